@@ -1,0 +1,274 @@
+"""A tree to numbers: compiled once, then numpy functions on arrays of samples.
+
+Every operation works element by element, and arrays are contiguous float64, so that a sample gives the
+same bits alone as among others. Where samples choose different branches, each branch sees only its own.
+"""
+
+from __future__ import annotations
+
+from collections import Counter
+from collections.abc import Callable, Mapping
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from calcbook.formulas.functions import implementation
+from calcbook.formulas.nodes import (
+    CONSTANTS,
+    Binary,
+    Call,
+    Column,
+    Compare,
+    Conditional,
+    Logic,
+    Negate,
+    Node,
+    Not,
+    Number,
+    Relation,
+    Symbol,
+    is_truth,
+    tree_of,
+    walk,
+)
+
+
+class _Frame:
+    """The values of one set of samples, and the repeated parts already worked out for them."""
+
+    __slots__ = ("shared", "values")
+
+    def __init__(self, values: dict[str, Any]):
+        self.values = values
+        self.shared: dict[int, Any] = {}
+
+
+_Step = Callable[[_Frame], Any]
+
+_OPERATIONS: dict[str, Callable[..., Any]] = {
+    "+": np.add,
+    "-": np.subtract,
+    "*": np.multiply,
+    "/": np.divide,
+    "<": np.less,
+    "<=": np.less_equal,
+    ">": np.greater,
+    ">=": np.greater_equal,
+    "==": np.equal,
+    "!=": np.not_equal,
+}
+
+
+def evaluate(relation: Relation | Node, values: Mapping[str, Any]) -> NDArray[Any]:
+    """The value of a relation for SI values by symbol name.
+
+    Values are numbers, flags or arrays that broadcast together; ``table.name`` used by ``mean`` is an object
+    with ``value(T)``, ``mean(T_1, T_2)`` and ``slope(T)`` on arrays. The result is float64, or bool for a
+    condition; what has no value is NaN or infinite, without a warning. Raises KeyError for a missing symbol.
+    """
+    tree = tree_of(relation)
+    frame = _Frame({name: _array(values[name]) for name in tree.symbols})
+    with np.errstate(all="ignore"):
+        result = _compiled(tree)(frame)
+    array = np.asarray(result, dtype=bool if is_truth(tree) else np.float64)
+    borrowed = not array.flags.writeable or any(array is value for value in frame.values.values())
+    return array.copy() if borrowed else array
+
+
+def _array(value: Any) -> Any:
+    """A value as contiguous floats (strided memory may take another inner loop); a table column as it is."""
+    if isinstance(value, float):
+        return np.array(value)
+    if hasattr(value, "mean") and hasattr(value, "slope"):
+        return value
+    array = np.asarray(value, dtype=np.float64)
+    return array if array.flags.c_contiguous else array.copy(order="C")
+
+
+def _compiled(tree: Node) -> _Step:
+    step = tree.memory.get(_compiled)
+    if step is None:
+        counts = Counter(node for node in walk(tree) if isinstance(node, Binary | Call | Conditional))
+        often: list[Node] = [node for node, count in counts.items() if count > 1]
+        repeated = {node: slot for slot, node in enumerate(often)}
+        step = tree.memory[_compiled] = _compile(tree, repeated)
+    return step
+
+
+def _compile(node: Node, repeated: dict[Node, int]) -> _Step:
+    """The step of a node; parts that occur more than once (as in derivatives) are worked out once."""
+    if not node.symbols and not is_truth(node) and not isinstance(node, Number | Symbol):
+        return _constant_step(_compile_parts(node, {}))
+    step = _compile_parts(node, repeated)
+    slot = repeated.get(node)
+    if slot is None:
+        return step
+
+    def shared(frame: _Frame) -> Any:
+        found = frame.shared.get(slot)
+        if found is None:
+            found = frame.shared[slot] = step(frame)
+        return found
+
+    return shared
+
+
+def _constant_step(step: _Step) -> _Step:
+    with np.errstate(all="ignore"):
+        constant = np.array(step(_Frame({})), dtype=np.float64)
+    constant.setflags(write=False)
+    return lambda frame: constant
+
+
+def _compile_parts(node: Node, repeated: dict[Node, int]) -> _Step:
+    match node:
+        case Number(value=value):
+            return _fixed(value)
+        case Symbol(name=name) if name in CONSTANTS:
+            return _fixed(CONSTANTS[name])
+        case Symbol(name=name):
+            return lambda frame: frame.values[name]
+        case Column():
+            key = node.key
+            return lambda frame: frame.values[key]
+        case Negate(x=x):
+            inner = _compile(x, repeated)
+            return lambda frame: np.negative(inner(frame))
+        case Binary(op="**", a=a, b=b):
+            return _power_step(a, b, repeated)
+        case Binary(op=op, a=a, b=b):
+            return _pair_step(_OPERATIONS[op], _compile(a, repeated), _compile(b, repeated))
+        case Call(name=name, args=args):
+            return _call_step(implementation(name), [_compile(part, repeated) for part in args])
+        case Conditional(condition=condition, yes=yes, no=no):
+            return _conditional_step(condition, yes, no, repeated)
+    return _compile_truth(node, repeated)
+
+
+def _compile_truth(node: Node, repeated: dict[Node, int]) -> _Step:
+    """The step of a condition; a flag is true where it is not zero."""
+    match node:
+        case Compare(first=first, rest=rest):
+            return _compare_step(_compile(first, repeated), [(op, _compile(b, repeated)) for op, b in rest])
+        case Logic(op=op, parts=parts):
+            return _logic_step(op, parts, repeated)
+        case Not(x=x):
+            inner = _compile_truth(x, repeated)
+            return lambda frame: np.logical_not(inner(frame))
+        case Conditional() | Symbol() | Column():
+            value = _compile(node, repeated)
+            return lambda frame: np.not_equal(value(frame), 0.0)
+    raise TypeError(f"{type(node).__name__} is no condition")
+
+
+def _fixed(value: float) -> _Step:
+    constant = np.array(value)
+    constant.setflags(write=False)
+    return lambda frame: constant
+
+
+def _pair_step(operation: Callable[..., Any], first: _Step, second: _Step) -> _Step:
+    return lambda frame: operation(first(frame), second(frame))
+
+
+def _call_step(function: Callable[..., Any], args: list[_Step]) -> _Step:
+    if len(args) == 1:
+        (only,) = args
+        return lambda frame: function(only(frame))
+    return lambda frame: function(*(part(frame) for part in args))
+
+
+def _power_step(base: Node, exponent: Node, repeated: dict[Node, int]) -> _Step:
+    """``numpy.power`` takes short cuts (square, root, reciprocal) for an exponent that is one number.
+
+    A constant exponent is one number for every count of samples, so its short cut is always the same. Any
+    other exponent is laid out sample by sample, alone as among others, so that none is ever taken.
+    """
+    first, second = _compile(base, repeated), _compile(exponent, repeated)
+    if not exponent.symbols:
+        return _pair_step(np.power, first, second)
+
+    def general(frame: _Frame) -> Any:
+        a, b = np.broadcast_arrays(first(frame), second(frame))
+        flat = np.power(np.ascontiguousarray(a).reshape(-1), np.ascontiguousarray(b).reshape(-1))
+        return flat.reshape(a.shape)
+
+    return general
+
+
+def _compare_step(first: _Step, rest: list[tuple[str, _Step]]) -> _Step:
+    pairs = [(_OPERATIONS[op], step) for op, step in rest]
+
+    def compare(frame: _Frame) -> Any:
+        left = first(frame)
+        result: Any = None
+        for operation, step in pairs:
+            right = step(frame)
+            holds = operation(left, right)
+            result = holds if result is None else np.logical_and(result, holds)
+            left = right
+        return result
+
+    return compare
+
+
+def _truth_compiled(node: Node) -> _Step:
+    return _compiled(node) if is_truth(node) else _compile_truth(node, {})
+
+
+def _logic_step(op: str, parts: tuple[Node, ...], repeated: dict[Node, int]) -> _Step:
+    first = _compile_truth(parts[0], repeated)
+    later = [(_truth_compiled(part), part.symbols) for part in parts[1:]]
+    settled_by = op == "or"
+
+    def logic(frame: _Frame) -> Any:
+        result: Any = np.asarray(first(frame))
+        for step, symbols in later:
+            chosen = np.not_equal(result, settled_by)
+            result = _merge(frame, chosen, (step, symbols), (_fixed(settled_by), ()), bool)
+        return result
+
+    return logic
+
+
+def _conditional_step(condition: Node, yes: Node, no: Node, repeated: dict[Node, int]) -> _Step:
+    test = _compile_truth(condition, repeated)
+    kind = bool if is_truth(yes) or is_truth(no) else float
+    compiled = _truth_compiled if kind is bool else _compiled
+    branches = [(compiled(part), part.symbols) for part in (yes, no)]
+
+    def choose(frame: _Frame) -> Any:
+        return _merge(frame, np.asarray(test(frame)), branches[0], branches[1], kind)
+
+    return choose
+
+
+_Branch = tuple[_Step, tuple[str, ...]]
+
+
+def _merge(frame: _Frame, chosen: NDArray[Any], yes: _Branch, no: _Branch, kind: type) -> Any:
+    """Each branch for the samples that choose it; ``chosen`` says which take ``yes``."""
+    if chosen.ndim == 0:
+        return (yes if chosen else no)[0](_Frame(frame.values))
+    shape = np.broadcast_shapes(
+        chosen.shape,
+        *(np.shape(frame.values[name]) for _, names in (yes, no) for name in names if _is_array(frame, name)),
+    )
+    chosen = np.broadcast_to(chosen, shape)
+    result: NDArray[Any] = np.empty(shape, dtype=kind)
+    for (step, names), mask in ((yes, chosen), (no, ~chosen)):
+        if mask.any():
+            result[mask] = step(_Frame({name: _samples(frame.values[name], mask) for name in names}))
+    return result
+
+
+def _is_array(frame: _Frame, name: str) -> bool:
+    return isinstance(frame.values[name], np.ndarray)
+
+
+def _samples(value: Any, mask: NDArray[Any]) -> Any:
+    """The values of the chosen samples; one number for all of them stays one number."""
+    if not isinstance(value, np.ndarray) or value.ndim == 0:
+        return value
+    return np.broadcast_to(value, mask.shape)[mask]
