@@ -1,0 +1,37 @@
+"""Properties of fluids: pure fluids, mixtures, tables, stated constants; values and slopes on SI arrays.
+
+A fluid is made by ``pure``, ``mixture``, ``tabulated`` or ``constant``; ``.at(pressure, phase)`` gives
+the object that answers. Backend fluids are answered from Chebyshev series that were compared with the
+backend when made, and are kept in the user's cache folder: a repeat run gets the same bits and does not
+import the backend.
+
+May import: the standard library, numpy, platformdirs, CoolProp (inside functions) and ``calcbook.faults``.
+Must never: know a unit, read a calculation file, or let another room import CoolProp.
+"""
+
+from calcbook.properties.backed import mixture, pure
+from calcbook.properties.backend import PROPERTIES, backend_version
+from calcbook.properties.faults import PropertyFault
+from calcbook.properties.findings import Finding
+from calcbook.properties.fluid import Fluid, FluidAtPressure
+from calcbook.properties.names import fluid_names, mixture_names
+from calcbook.properties.stated import ViscosityLaw, astm_d341, constant, tabulated
+from calcbook.properties.store import clear_memory
+
+__all__ = [
+    "PROPERTIES",
+    "Finding",
+    "Fluid",
+    "FluidAtPressure",
+    "PropertyFault",
+    "ViscosityLaw",
+    "astm_d341",
+    "backend_version",
+    "clear_memory",
+    "constant",
+    "fluid_names",
+    "mixture",
+    "mixture_names",
+    "pure",
+    "tabulated",
+]

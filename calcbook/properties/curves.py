@@ -1,0 +1,153 @@
+"""Properties along a curve of single-phase states (one pressure and phase, or one side of saturation).
+
+The curve's whole temperature interval is cut in halves, and the halves again, until a Chebyshev series
+repeats the backend at other points; a panel that is still not met at the last cut is answered by direct
+calls. Which panel answers a temperature follows from the curve alone, not from what was asked before;
+so panels can be made when first needed, and kept.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass
+
+import numpy as np
+
+from calcbook.properties import series
+from calcbook.properties.faults import PropertyFault
+from calcbook.properties.series import Array
+from calcbook.properties.store import Store
+
+DEPTH = 10  # the smallest panel is 1/1024 of the interval: below 2 K for steam up to 2000 K
+AGREEMENT = 1e-11  # of a series with the backend, relative (of the largest value where not in logarithms)
+SLOPE_AGREEMENT = 1e-5  # of slopes in pressure: differences of the backend hold about 1e-6
+PRESSURE_SLOPE = " per pressure"
+
+Sample = Callable[[float], Mapping[str, float]]
+
+
+@dataclass(frozen=True)
+class Family:
+    """Properties that one call of ``sample`` gives together; a missing or failed one is NaN."""
+
+    properties: tuple[str, ...]
+    sample: Sample
+    agreement: float
+
+
+@dataclass(frozen=True, eq=False)
+class Curve:
+    """One curve: its interval of temperature, where its answers are kept, and how to ask anew."""
+
+    low: float
+    high: float
+    store: Store
+    families: tuple[Family, ...]
+
+    def value(self, name: str, temperatures: Array) -> Array:
+        """The property at temperatures (1-d, all within the interval); NaN where the backend fails."""
+        return self._walk(name, temperatures, sloped=False)
+
+    def slope(self, name: str, temperatures: Array) -> Array:
+        """Its derivative along the curve, from the same series."""
+        return self._walk(name, temperatures, sloped=True)
+
+    def _walk(self, name: str, temperatures: Array, sloped: bool) -> Array:
+        result = np.empty_like(temperatures)
+        waiting = [("", self.low, self.high, np.arange(temperatures.size))]
+        while waiting:
+            path, low, high, chosen = waiting.pop()
+            if chosen.size == 0:
+                continue
+            coefficients = self._panel(name, path, low, high)
+            if coefficients is not None:
+                result[chosen] = _from_series(name, coefficients, low, high, temperatures[chosen], sloped)
+            elif len(path) == DEPTH:
+                result[chosen] = self._direct(name, temperatures[chosen], sloped)
+            else:
+                middle = 0.5 * (low + high)
+                below = temperatures[chosen] < middle
+                waiting.append((path + "0", low, middle, chosen[below]))
+                waiting.append((path + "1", middle, high, chosen[~below]))
+        self.store.save()
+        return result
+
+    def _panel(self, name: str, path: str, low: float, high: float) -> list[float] | None:
+        panels = self.store.series.setdefault(name, {})
+        if path not in panels:
+            self._make(self._family(name), path, low, high)
+        return panels[path]
+
+    def _make(self, family: Family, path: str, low: float, high: float) -> None:
+        """Fit every property of the family that reaches this panel, and keep the verdicts."""
+        at_nodes = [family.sample(temperature) for temperature in series.nodes(low, high).tolist()]
+        tested = series.test_points(low, high)
+        at_tested = [family.sample(temperature) for temperature in tested.tolist()]
+        for name in family.properties:
+            panels = self.store.series.setdefault(name, {})
+            if path in panels or (path and panels.get(path[:-1], []) is not None):
+                continue
+            values = np.array([row[name] for row in at_nodes])
+            targets = np.array([row[name] for row in at_tested])
+            panels[path] = _accepted(name, values, targets, low, high, tested, family.agreement)
+        self.store.changed()
+
+    def _direct(self, name: str, temperatures: Array, sloped: bool) -> Array:
+        kept = self.store.direct.setdefault(name + " slope" if sloped else name, {})
+        family = self._family(name)
+        result = np.empty_like(temperatures)
+        for index, temperature in enumerate(temperatures.tolist()):
+            place = temperature.hex()
+            if place not in kept:
+                found = self._difference(name, temperature) if sloped else family.sample(temperature)[name]
+                kept[place] = float(found) if np.isfinite(found) else None
+                self.store.changed()
+            answer = kept[place]
+            result[index] = np.nan if answer is None else answer
+        return result
+
+    def _difference(self, name: str, temperature: float) -> float:
+        """Slope by a central difference of direct calls, one-sided at the ends of the curve."""
+        step = 1e-5 * temperature  # rounding 1e-12/1e-5 and curvature (1e-5)^2 are both far below 1e-6
+        low = max(temperature - step, self.low)
+        high = min(temperature + step, self.high)
+        sample = self._family(name).sample
+        return (sample(high)[name] - sample(low)[name]) / (high - low)
+
+    def _family(self, name: str) -> Family:
+        for family in self.families:
+            if name in family.properties:
+                return family
+        raise PropertyFault("property-missing", f"no {name} along this curve")
+
+
+def logged(name: str) -> bool:
+    """Whether the series of a property is one of its logarithm: those that are always positive."""
+    return name != "expansion coefficient" and not name.endswith(PRESSURE_SLOPE)
+
+
+def _accepted(
+    name: str, values: Array, targets: Array, low: float, high: float, tested: Array, agreement: float
+) -> list[float] | None:
+    everything = np.concatenate((values, targets))
+    if not np.all(np.isfinite(everything)) or (logged(name) and not np.all(everything > 0.0)):
+        return None
+    if logged(name):
+        values, targets, scale = np.log(values), np.log(targets), 1.0
+    else:
+        scale = float(np.max(np.abs(everything)))
+    coefficients = series.fit(values)
+    apart = np.abs(series.evaluate(coefficients, low, high, tested) - targets)
+    return coefficients if np.max(apart) <= agreement * scale else None
+
+
+def _from_series(
+    name: str, coefficients: list[float], low: float, high: float, temperatures: Array, sloped: bool
+) -> Array:
+    if not logged(name):
+        chosen = series.derivative(coefficients, low, high) if sloped else coefficients
+        return series.evaluate(chosen, low, high, temperatures)
+    value = np.exp(series.evaluate(coefficients, low, high, temperatures))
+    if not sloped:
+        return value
+    return value * series.evaluate(series.derivative(coefficients, low, high), low, high, temperatures)

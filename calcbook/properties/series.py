@@ -1,0 +1,61 @@
+"""Chebyshev series of one variable over one interval: fit, value, derivative.
+
+Values are found by Clenshaw's recurrence with elementwise sums and products only, so the bits of a
+sample do not depend on the other samples of the array. Source: C. W. Clenshaw, A note on the summation
+of Chebyshev series, Mathematical Tables and Other Aids to Computation 9 (1955) 118-120.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+import numpy as np
+from numpy.typing import NDArray
+
+Array = NDArray[np.float64]
+
+NODES = 28
+
+
+def nodes(low: float, high: float) -> Array:
+    """The ``NODES`` Chebyshev points (of the first kind) of an interval; none lies on its ends."""
+    angles = (np.arange(NODES) + 0.5) * (np.pi / NODES)
+    return 0.5 * (low + high) + 0.5 * (high - low) * np.cos(angles)
+
+
+def test_points(low: float, high: float) -> Array:
+    """Both ends and every second point midway between nodes: where a fit is compared with its source."""
+    angles = np.arange(2, NODES, 2) * (np.pi / NODES)
+    inner = 0.5 * (low + high) + 0.5 * (high - low) * np.cos(angles)
+    return np.concatenate(([low], inner, [high]))
+
+
+def fit(values: Array) -> list[float]:
+    """Coefficients c_0 ... of the series through ``values`` at ``nodes``; c_0 enters whole, not halved."""
+    angles = (np.arange(NODES) + 0.5) * (np.pi / NODES)
+    orders = np.arange(NODES)[:, np.newaxis]
+    coefficients = (np.cos(orders * angles) * values).sum(axis=1) * (2.0 / NODES)
+    coefficients[0] *= 0.5
+    return [float(coefficient) for coefficient in coefficients]
+
+
+def evaluate(coefficients: Sequence[float], low: float, high: float, at: Array) -> Array:
+    """The sum of the series at ``at`` (any shape)."""
+    x = (at - 0.5 * (low + high)) / (0.5 * (high - low))
+    double = x + x
+    later = np.zeros_like(x)
+    last = np.zeros_like(x)
+    for coefficient in reversed(coefficients[1:]):
+        later, last = double * later - last + coefficient, later
+    return x * later - last + coefficients[0]
+
+
+def derivative(coefficients: Sequence[float], low: float, high: float) -> list[float]:
+    """Coefficients of the derivative with respect to the variable of the interval (not the reduced one)."""
+    count = len(coefficients)
+    sloped = [0.0] * (count + 1)
+    for order in range(count - 1, 0, -1):
+        sloped[order - 1] = sloped[order + 1] + 2.0 * order * coefficients[order]
+    sloped[0] *= 0.5
+    scale = 2.0 / (high - low)
+    return [scale * coefficient for coefficient in sloped[: max(count - 1, 1)]]
