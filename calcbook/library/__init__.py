@@ -1,0 +1,144 @@
+"""The library: knowledge as cards, their loader, and the programs that cards become.
+
+Cards are YAML files in ``situations/``, ``methods/``, ``materials/`` and ``allowances/``; a book may
+bring its own in ``cards/`` beside its calculation files (house methods). A card is loaded by name,
+never all at once.
+
+May import: ``formulas``, ``documents``, ``quantities``, ``faults``. Must never: know a calculation, a
+fluid or a record.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from pathlib import Path
+
+import numpy as np
+
+from calcbook.faults import Fault, Faults, Place, nearest_names
+from calcbook.library.cards import Material, Method, Situation
+from calcbook.library.programs import Program, build_program, check_dimensions, evaluate_program, need_value
+from calcbook.library.reading import read_material, read_method, read_situation, vocabulary
+
+ROOT = Path(__file__).parent
+
+__all__ = [
+    "Library",
+    "Program",
+    "build_program",
+    "check_dimensions",
+    "evaluate_method",
+    "load_material",
+    "load_method",
+    "load_situation",
+    "vocabulary",
+]
+
+
+class Library:
+    """Cards by name: the built-in ones, and those of one book where it brings any."""
+
+    def __init__(self, house: Path | None = None):
+        self.house = house if house is not None and house.is_dir() else None
+        self._methods: dict[str, Method] = {}
+        self._situations: dict[str, Situation] = {}
+        self._materials: dict[str, Material] = {}
+        self._programs: dict[str, Program] = {}
+
+    def method(self, name: str) -> Method:
+        """A method card by id. Raises ``Faults``: method-unknown, and every fault of the card."""
+        if name not in self._methods:
+            path, house = self._path("methods", name)
+            self._methods[name] = read_method(path, house)
+        return self._methods[name]
+
+    def situation(self, name: str) -> Situation:
+        """A situation card by id. Raises ``Faults``: situation-unknown, and every fault of the card."""
+        if name not in self._situations:
+            self._situations[name] = read_situation(self._path("situations", name)[0])
+        return self._situations[name]
+
+    def material(self, name: str) -> Material:
+        """A material card by id. Raises ``Faults``: material-unknown, and every fault of the card."""
+        if name not in self._materials:
+            path, house = self._path("materials", name)
+            self._materials[name] = read_material(path, house)
+        return self._materials[name]
+
+    def program(self, name: str) -> Program:
+        """The program of a method, with its dimensions checked."""
+        if name not in self._programs:
+            program = build_program(self.method(name), self.method)
+            check_dimensions(program)
+            self._programs[name] = program
+        return self._programs[name]
+
+    def names(self, kind: str) -> tuple[str, ...]:
+        """The ids of every card of a kind (methods, situations, materials), in alphabetical order."""
+        found = {path.stem for folder in self._folders(kind) for path in folder.glob("*.yaml")}
+        return tuple(sorted(found))
+
+    def _folders(self, kind: str) -> list[Path]:
+        folders = [ROOT / kind]
+        if self.house is not None:
+            folders.append(self.house)
+        return folders
+
+    def _path(self, kind: str, name: str) -> tuple[Path, bool]:
+        for folder in self._folders(kind):
+            path = folder / f"{name}.yaml"
+            if name and "/" not in name and "\\" not in name and path.is_file():
+                return path, folder == self.house
+        singular = kind[:-1]
+        raise Faults([Fault(f"{singular}-unknown", Place(name), f"the library has no {singular} `{name}`", name,
+                            f"a {singular} of `calcbook library`", nearest_names(name, self.names(kind)))])
+
+
+_library = Library()
+
+
+def load_method(name: str) -> Method:
+    """A built-in method card by id."""
+    return _library.method(name)
+
+
+def load_situation(name: str) -> Situation:
+    """A built-in situation card by id."""
+    return _library.situation(name)
+
+
+def load_material(name: str) -> Material:
+    """A built-in material card by id."""
+    return _library.material(name)
+
+
+def evaluate_method(card: Method, given: Mapping[str, object], library: Library | None = None) -> dict[str, float]:
+    """Evaluate a method card on SI figures by its own symbols; returns every symbol it assigns.
+
+    A use symbol (such as ``f``) may be given directly. Flags take True/False or yes/no, choices their
+    word. Raises ``KeyError`` for a symbol that the card does not take.
+    """
+    find = (library or _library).method
+    overridden = tuple(use.symbol for use in card.uses if use.symbol in given)
+    program = build_program(card, find, overridden)
+    values = evaluate_program(program, bind_given(program, given))
+    by_symbol = {name: program.scope[name] for name in program.scope if program.scope[name] in values}
+    for step in program.steps:
+        by_symbol.setdefault(step.symbol, step.name)
+    return {symbol: float(values[name]) for symbol, name in by_symbol.items()}
+
+
+def bind_given(program: Program, given: Mapping[str, object]) -> dict[str, np.ndarray]:
+    """Figures by a card's symbols, as arrays by the names of the program's needs."""
+    needs = {need.name: need.need for need in program.needs}
+    bound: dict[str, np.ndarray] = {}
+    for symbol, figure in given.items():
+        name = program.scope.get(symbol, symbol)
+        if name not in needs:
+            name = next((key for key, need in needs.items() if need.symbol == symbol), "")
+        if not name:
+            raise KeyError(f"{program.method.id} takes no `{symbol}`; it takes {', '.join(needs)}")
+        bound[name] = need_value(needs[name], str(figure)) if isinstance(figure, (str, bool)) else np.asarray(figure)
+    return bound
+
+

@@ -1,0 +1,252 @@
+"""The four ways in which a card makes a figure from others: relation, table, root, sum.
+
+Every operation takes SI arrays by local symbol and gives an array; ``slopes`` gives the derivative
+with respect to the symbols asked for. Both come from the one text of the card.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import dataclass
+from typing import Protocol
+
+import numpy as np
+
+from calcbook.formulas import Binary, Compare, Node, Relation, evaluate, partial
+from calcbook.library.cards import Solve, Sum, Table
+
+Array = np.ndarray
+_ROOT_PASSES = 200
+
+
+class Operation(Protocol):
+    """What makes one figure. ``symbols`` are the local names of what it takes."""
+
+    @property
+    def symbols(self) -> tuple[str, ...]: ...
+
+    def value(self, arguments: Mapping[str, Array]) -> Array: ...
+
+    def slopes(self, arguments: Mapping[str, Array], value: Array, wanted: Iterable[str]) -> dict[str, Array]: ...
+
+
+@dataclass(frozen=True, slots=True)
+class RelationOperation:
+    """A plain relation."""
+
+    relation: Relation
+
+    @property
+    def symbols(self) -> tuple[str, ...]:
+        return self.relation.symbols
+
+    def value(self, arguments: Mapping[str, Array]) -> Array:
+        return evaluate(self.relation, arguments)
+
+    def slopes(self, arguments: Mapping[str, Array], value: Array, wanted: Iterable[str]) -> dict[str, Array]:
+        return {symbol: evaluate(partial(self.relation, symbol), arguments) for symbol in wanted}
+
+
+@dataclass(frozen=True, slots=True)
+class LookupOperation:
+    """One column of a table, found by the symbols that the table names. Outside: NaN, or the nearest row."""
+
+    table: Table
+    column: str
+
+    @property
+    def symbols(self) -> tuple[str, ...]:
+        return tuple(self.table.by)
+
+    def value(self, arguments: Mapping[str, Array]) -> Array:
+        return self._find(arguments)[0]
+
+    def slopes(self, arguments: Mapping[str, Array], value: Array, wanted: Iterable[str]) -> dict[str, Array]:
+        found = self._find(arguments)[1]
+        zero = np.zeros_like(value)
+        return {symbol: found if self.table.by[symbol] in ("linear", "log-log") else zero for symbol in wanted}
+
+    def _find(self, arguments: Mapping[str, Array]) -> tuple[Array, Array]:
+        shape = np.broadcast_shapes(*(np.shape(arguments[symbol]) for symbol in self.table.by))
+        flat = {symbol: np.broadcast_to(arguments[symbol], shape).ravel().astype(float) for symbol in self.table.by}
+        rows = np.ones((len(self.table.cells), int(np.prod(shape, dtype=int))), dtype=bool)
+        interpolated = ""
+        for symbol, way in self.table.by.items():
+            if way == "exact":
+                rows &= self._cells(symbol)[:, None] == flat[symbol][None, :]
+            elif way == "step":
+                rows &= self._step(flat[symbol])
+            else:
+                interpolated = symbol
+        values, slopes = self._pick(rows, flat, interpolated)
+        return values.reshape(shape), slopes.reshape(shape)
+
+    def _cells(self, column: str) -> Array:
+        return self.table.cells[:, self.table.columns.index(column)]
+
+    def _step(self, figures: Array) -> Array:
+        low, high = self._cells("from"), self._cells("to")
+        at_end = (figures[None, :] == high[:, None]) & (high[:, None] == high.max())
+        inside = (low[:, None] <= figures[None, :]) & (figures[None, :] < high[:, None]) | at_end
+        if self.table.outside != "stop":
+            inside |= (figures[None, :] < low.min()) & (low[:, None] == low.min())
+            inside |= (figures[None, :] > high.max()) & (high[:, None] == high.max())
+        return inside
+
+    def _pick(self, rows: Array, flat: Mapping[str, Array], interpolated: str) -> tuple[Array, Array]:
+        column = self._cells(self.column)
+        values = np.full(rows.shape[1], np.nan)
+        slopes = np.zeros(rows.shape[1])
+        if not interpolated:
+            found = rows.any(axis=0)
+            values[found] = column[rows[:, found].argmax(axis=0)]
+            return values, slopes
+        for pattern in np.unique(rows, axis=1).T:
+            samples = (rows == pattern[:, None]).all(axis=0)
+            if pattern.any():
+                values[samples], slopes[samples] = self._between(
+                    self._cells(interpolated)[pattern], column[pattern], flat[interpolated][samples], interpolated
+                )
+        return values, slopes
+
+    def _between(self, at: Array, figures: Array, where: Array, symbol: str) -> tuple[Array, Array]:
+        logarithmic = self.table.by[symbol] == "log-log"
+        x, y, place = (np.log(at), np.log(figures), np.log(where)) if logarithmic else (at, figures, where)
+        upper = np.clip(np.searchsorted(x, place, side="right"), 1, len(x) - 1)
+        gradient = (y[upper] - y[upper - 1]) / (x[upper] - x[upper - 1])
+        held = np.clip(place, x[0], x[-1])
+        value = y[upper - 1] + gradient * (held - x[upper - 1])
+        gradient = np.where(held == place, gradient, 0.0)
+        if self.table.outside == "stop":
+            value = np.where(held == place, value, np.nan)
+        return (np.exp(value), gradient * np.exp(value) / where) if logarithmic else (value, gradient)
+
+
+@dataclass(frozen=True, slots=True)
+class SolveOperation:
+    """The root of an equation between two bounds, by Newton's method kept inside a shrinking bracket."""
+
+    line: Solve
+
+    @property
+    def symbols(self) -> tuple[str, ...]:
+        return tuple(symbol for symbol in self.line.equation.symbols if symbol != self.line.symbol)
+
+    @property
+    def residual(self) -> Node:
+        equation = self.line.equation.tree
+        assert isinstance(equation, Compare)
+        return Binary("-", equation.first, equation.rest[0][1])
+
+    def value(self, arguments: Mapping[str, Array]) -> Array:
+        shape = np.broadcast_shapes(*(np.shape(arguments[symbol]) for symbol in self.symbols))
+        known = {name: np.broadcast_to(arguments[name], shape).ravel() for name in self.symbols}
+        size = int(np.prod(shape, dtype=int))
+        return self._root(known, size).reshape(shape)
+
+    def _root(self, known: dict[str, Array], size: int) -> Array:
+        symbol, residual = self.line.symbol, self.residual
+        slope = partial(residual, symbol)
+        low, high = (np.full(size, bound) for bound in self.line.between)
+        at_low = evaluate(residual, known | {symbol: low})
+        at_high = evaluate(residual, known | {symbol: high})
+        root = np.full(size, self.line.start)
+        root[~(at_low * at_high <= 0.0)] = np.nan
+        active = np.isfinite(root)
+        for _ in range(_ROOT_PASSES):
+            if not active.any():
+                break
+            here = {name: figures[active] for name, figures in known.items()} | {symbol: root[active]}
+            off = evaluate(residual, here)
+            below = np.sign(off) == np.sign(at_low[active])
+            low[active] = np.where(below, root[active], low[active])
+            high[active] = np.where(below, high[active], root[active])
+            with np.errstate(divide="ignore", invalid="ignore"):
+                step = root[active] - off / evaluate(slope, here)
+            outside = ~((step > low[active]) & (step < high[active]))
+            step = np.where(outside, 0.5 * (low[active] + high[active]), step)
+            step = np.where(off == 0.0, root[active], step)
+            done = np.abs(step - root[active]) <= 4.0e-16 * np.abs(step)
+            root[active] = step
+            active[np.flatnonzero(active)[done]] = False
+        return root
+
+    def slopes(self, arguments: Mapping[str, Array], value: Array, wanted: Iterable[str]) -> dict[str, Array]:
+        known = {name: arguments[name] for name in self.symbols} | {self.line.symbol: value}
+        along = evaluate(partial(self.residual, self.line.symbol), known)
+        return {name: -evaluate(partial(self.residual, name), known) / along for name in wanted}
+
+
+@dataclass(frozen=True, slots=True)
+class SumOperation:
+    """A sum over 0, 1, … terms − 1."""
+
+    line: Sum
+
+    @property
+    def symbols(self) -> tuple[str, ...]:
+        return tuple(symbol for symbol in self.line.of.symbols if symbol != self.line.over)
+
+    def value(self, arguments: Mapping[str, Array]) -> Array:
+        return self._added(self.line.of.tree, arguments)
+
+    def slopes(self, arguments: Mapping[str, Array], value: Array, wanted: Iterable[str]) -> dict[str, Array]:
+        return {name: self._added(partial(self.line.of, name), arguments) for name in wanted}
+
+    def _added(self, term: Node, arguments: Mapping[str, Array]) -> Array:
+        total: Array = np.zeros(())
+        for index in range(self.line.terms):
+            total = total + evaluate(term, {**arguments, self.line.over: np.asarray(float(index))})
+        return np.asarray(total)
+
+
+class Step(Protocol):
+    """A named operation with its arguments bound to other names."""
+
+    @property
+    def name(self) -> str: ...
+
+    @property
+    def operation(self) -> Operation: ...
+
+    @property
+    def inputs(self) -> Mapping[str, str]: ...
+
+
+Slopes = dict[str, dict[str, Array]]
+
+
+def run(steps: Sequence[Step], values: dict[str, Array], slopes: Slopes | None = None) -> None:
+    """Evaluate steps in order into ``values``; with ``slopes``, carry derivatives along the chain.
+
+    ``slopes[name][seed]`` is the derivative of a value with respect to a seed; only names that depend
+    on a seed have an entry, so that what does not depend costs nothing.
+    """
+    for step in steps:
+        arguments = {local: values[name] for local, name in step.inputs.items()}
+        value = step.operation.value(arguments)
+        values[step.name] = value
+        if slopes is not None:
+            carried = carry(step, arguments, value, slopes)
+            if carried:
+                slopes[step.name] = carried
+
+
+def carry(step: Step, arguments: Mapping[str, Array], value: Array, slopes: Slopes) -> dict[str, Array]:
+    """The chain rule for one step: derivative with respect to every seed that its inputs depend on."""
+    moving = [local for local, name in step.inputs.items() if name in slopes]
+    if not moving:
+        return {}
+    local_slopes = step.operation.slopes(arguments, value, moving)
+    total: dict[str, Array] = {}
+    for local in moving:
+        for seed, slope in slopes[step.inputs[local]].items():
+            part = _product(local_slopes[local], slope)
+            total[seed] = total[seed] + part if seed in total else part
+    return total
+
+
+def _product(outer: Array, inner: Array) -> Array:
+    """A product in which a zero outer slope stays zero, also where the inner one is infinite."""
+    with np.errstate(invalid="ignore", over="ignore"):
+        return np.where((outer == 0.0) | (inner == 0.0), 0.0, outer * inner)
