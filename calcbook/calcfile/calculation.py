@@ -1,0 +1,243 @@
+"""What a calculation file says, as frozen types: every value with its place, nothing resolved yet."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+
+from calcbook.faults import Place
+from calcbook.formulas import Relation
+from calcbook.quantities import Quantity
+
+
+@dataclass(frozen=True, slots=True)
+class Value:
+    """A figure where the file asks for one: a symbol of the givens, a word, or a quantity with its source.
+
+    ``stated_at`` is the state a volume flow is measured at.
+    """
+
+    text: str
+    place: Place
+    symbol: str = ""
+    quantity: Quantity | None = None
+    source: str = ""
+    has_source: bool = False
+    stated_at: Mapping[str, Value] = field(default_factory=dict)
+
+    @property
+    def is_literal(self) -> bool:
+        return self.quantity is not None
+
+
+@dataclass(frozen=True, slots=True)
+class Tolerance:
+    """A tolerance as written: rectangular half-width, standard, or expanded with its factor k."""
+
+    text: str
+    place: Place
+    kind: str
+    factor: float = 1.0
+
+
+@dataclass(frozen=True, slots=True)
+class Given:
+    """A named input quantity."""
+
+    symbol: str
+    value: Value
+    meaning: str
+    source: str
+    tolerance: Tolerance | None
+    place: Place
+
+
+@dataclass(frozen=True, slots=True)
+class Derived:
+    """A quantity that follows from givens by a relation."""
+
+    symbol: str
+    relation: Relation
+    meaning: str
+    place: Place
+
+
+@dataclass(frozen=True, slots=True)
+class Assumption:
+    """A statement taken as true by the engineer."""
+
+    id: str
+    text: str
+    basis: str
+    verified_by: str
+    verified_on: str
+    evidence: str
+    place: Place
+
+    @property
+    def is_verified(self) -> bool:
+        return bool(self.verified_by and self.verified_on and self.evidence)
+
+
+@dataclass(frozen=True, slots=True)
+class Revision:
+    """One line of the revision history."""
+
+    revision: str
+    date: str
+    reason: str
+    place: Place
+
+
+@dataclass(frozen=True, slots=True)
+class FluidText:
+    """A fluid as the file names it.
+
+    ``kind``: name, mixture, table or constants. ``columns`` holds the entries of a table or constants by
+    property name; ``astm`` the two points of a D341 viscosity as (temperature, kinematic viscosity).
+    """
+
+    kind: str
+    name: str
+    place: Place
+    basis: str = ""
+    fraction: Value | None = None
+    columns: Mapping[str, tuple[Value, ...]] = field(default_factory=dict)
+    astm: tuple[tuple[Value, Value], ...] = ()
+    source: str = ""
+
+
+@dataclass(frozen=True, slots=True)
+class Stream:
+    """A fluid with its state and flow."""
+
+    name: str
+    fluid: FluidText | None
+    temperature: Value | None
+    pressure: Value | None
+    flow: Value | None
+    phase: str
+    place: Place
+
+
+@dataclass(frozen=True, slots=True)
+class Geometry:
+    """Shape and the dimensions that stand in the file, by their key."""
+
+    shape: str
+    dimensions: Mapping[str, Value]
+    place: Place
+
+
+@dataclass(frozen=True, slots=True)
+class Deposit:
+    """A fouling layer by thickness and conductivity."""
+
+    thickness: Value | None
+    conductivity: Value | None
+    narrows: bool
+    place: Place
+
+
+@dataclass(frozen=True, slots=True)
+class Term:
+    """One entry of the resistance list, as written. ``values`` holds the figures by their key."""
+
+    name: str
+    kind: str
+    place: Place
+    texts: Mapping[str, str] = field(default_factory=dict)
+    text_places: Mapping[str, Place] = field(default_factory=dict)
+    values: Mapping[str, Value] = field(default_factory=dict)
+    with_values: Mapping[str, Value] = field(default_factory=dict)
+    deposit: Deposit | None = None
+    branches: tuple[Term, ...] = ()
+    includes: tuple[str, ...] = ()
+    holds_for: tuple[Value, Value] | None = None
+    scales_with: Relation | None = None
+
+    def place_of(self, key: str) -> Place:
+        if key in self.text_places:
+            return self.text_places[key]
+        return self.values[key].place if key in self.values else self.place
+
+
+@dataclass(frozen=True, slots=True)
+class Criterion:
+    """An acceptance criterion: a result, an operator, and a quantity or given."""
+
+    text: str
+    result: str
+    operator: str
+    limit: Value
+    source: str
+    place: Place
+
+
+@dataclass(frozen=True, slots=True)
+class Acceptance:
+    """The engineer's answer to a failed check, with its bound and reason."""
+
+    check: str
+    within: str
+    direction: str
+    bound: Value | None
+    because: str
+    by: str
+    date: str
+    place: Place
+
+
+@dataclass(frozen=True, slots=True)
+class Report:
+    """How results are reported: the basis of U, and units."""
+
+    u_on: str
+    u_on_place: Place
+    units: str
+    quantity_units: Mapping[str, str]
+
+
+@dataclass(frozen=True, slots=True)
+class Settings:
+    """What book.yaml says; the defaults hold where there is no book."""
+
+    name: str = ""
+    site_pressure: Value | None = None
+    units: str = ""
+    output: str = ""
+    revisions: str = "letters"
+    roles: tuple[str, ...] = ("prepared", "checked", "approved")
+    people: Mapping[str, tuple[str, ...]] = field(default_factory=dict)
+    surface_temperature: Value | None = None
+    excess_surface: Value | None = None
+    open_items: str = "refuse final issue"
+    plain: object = None
+
+
+@dataclass(frozen=True, slots=True)
+class Calculation:
+    """One calculation file, read. ``meaning`` is its canonical content, for the digest."""
+
+    file: str
+    number: str
+    title: str
+    plant: str
+    revision: str
+    prepared_by: str
+    date: str
+    purpose: str
+    revisions: tuple[Revision, ...]
+    givens: Mapping[str, Given]
+    derived: Mapping[str, Derived]
+    assumptions: tuple[Assumption, ...]
+    streams: Mapping[str, Stream]
+    geometry: Geometry | None
+    resistances: tuple[Term, ...]
+    acceptance: tuple[Criterion, ...]
+    report: Report
+    cases: Mapping[str, Mapping[str, Given]]
+    accept: tuple[Acceptance, ...]
+    settings: Settings
+    meaning: object
+    place: Place

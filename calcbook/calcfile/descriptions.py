@@ -1,0 +1,288 @@
+"""The one description of the calculation file and of book.yaml.
+
+It drives reading, positions, nearest names, the documentation and the JSON Schema for editors.
+"""
+
+from __future__ import annotations
+
+from calcbook.documents import Description, Key
+
+TERM_KINDS = ("film", "fouling", "wall", "contact", "radiation", "stated")
+
+HEAD = Description(
+    "calculation",
+    "title block of the calculation",
+    (
+        Key("number", "unique number: letters, digits, - _ . (at most 40)", "name", required=True, example="WC-101"),
+        Key("title", "what is calculated", required=True),
+        Key("plant", "plant or site", required=True),
+        Key("revision", "revision letter or number", "name", required=True, example="A"),
+        Key("prepared by", "who prepared it", required=True),
+        Key("date", "date of preparation, YYYY-MM-DD", "date", required=True),
+    ),
+)
+REVISION = Description(
+    "a revision",
+    "one line of the revision history",
+    (
+        Key("revision", "revision letter or number", "name", required=True),
+        Key("date", "YYYY-MM-DD", "date", required=True),
+        Key("reason", "why the revision was made", required=True),
+    ),
+)
+TOLERANCE = Description(
+    "a tolerance",
+    "standard or expanded tolerance",
+    (
+        Key("standard", "standard deviation", "quantity"),
+        Key("expanded", "expanded tolerance", "quantity"),
+        Key("k", "coverage factor of the expanded tolerance", "number"),
+    ),
+)
+GIVEN = Description(
+    "a given",
+    "a named input quantity",
+    (
+        Key("value", "number with unit, as the source writes it", "name", required=True, example="15.75 mm"),
+        Key("is", "what the symbol means"),
+        Key("source", "document, revision and place the value comes from"),
+        Key("tolerance", "half-width, or {standard: …}, or {expanded: …, k: 2}", "node"),
+        Key("from", "a result of another calculation", "node", later=True),
+    ),
+)
+DERIVED = Description(
+    "a derived quantity",
+    "a relation over givens",
+    (
+        Key("relation", "right-hand side over givens", "relation", required=True),
+        Key("is", "what the symbol means", required=True),
+    ),
+)
+VERIFIED = Description(
+    "a verification",
+    "who verified an assumption, when and how",
+    (
+        Key("by", "who verified it", required=True),
+        Key("date", "YYYY-MM-DD", "date", required=True),
+        Key("evidence", "document that shows it", required=True),
+    ),
+)
+ASSUMPTION = Description(
+    "an assumption",
+    "a statement taken as true",
+    (
+        Key("text", "the statement", required=True),
+        Key("basis", "what it rests on", required=True),
+        Key("verified", "no, or {by: …, date: …, evidence: …}", "node"),
+    ),
+)
+SOURCED = Description(
+    "a figure",
+    "a value with its source",
+    (
+        Key("value", "number with unit", "name", required=True),
+        Key("source", "document and place the value comes from"),
+        Key("at", "state a volume flow is measured at", "mapping"),
+    ),
+)
+FLOW_STATE = Description(
+    "a flow state",
+    "state that a volume flow is measured at",
+    (
+        Key("temperature", "temperature of the stated volume", "node", required=True),
+        Key("pressure", "pressure of the stated volume", "node", required=True),
+    ),
+)
+FLUID_TABLE = Description(
+    "a fluid table",
+    "properties against temperature",
+    (
+        Key("T", "temperatures, rising", "list"),
+        Key("density", "density", "node"),
+        Key("viscosity", "dynamic viscosity, or {astm d341: [[T, ν], [T, ν]]}", "node"),
+        Key("conductivity", "thermal conductivity", "node"),
+        Key("heat capacity", "specific heat capacity", "node"),
+    ),
+)
+FLUID = Description(
+    "a fluid",
+    "a mixture, a table or constants",
+    (
+        Key("mixture", "names of the parts, such as ethylene glycol + water"),
+        Key("mass fraction", "mass fraction of the first part", "node"),
+        Key("volume fraction", "volume fraction of the first part", "node"),
+        Key("table", "properties against temperature", "mapping"),
+        Key("table file", "CSV file beside the calculation with a unit row", "name"),
+        Key("constants", "properties that do not change", "mapping"),
+        Key("source", "document the properties come from"),
+    ),
+)
+STREAM = Description(
+    "a stream",
+    "a fluid with its state and flow",
+    (
+        Key("fluid", "name of a fluid, or a mixture, table or constants", "node", required=True),
+        Key("temperature", "mean bulk temperature", "node", required=True),
+        Key("pressure", "pressure; needed for gases", "node"),
+        Key("flow", "mass flow, volume flow or speed, told apart by its unit", "node"),
+        Key("phase", "phase the engineer states", "choice", choices=("liquid", "gas")),
+        Key("non-condensable", "share of non-condensable gas", "node", later=True),
+    ),
+)
+GEOMETRY = Description(
+    "geometry",
+    "shape and dimensions of the surface",
+    (
+        Key("shape", "tube, plane or sphere", "choice", choices=("tube", "plane", "sphere"), required=True),
+        Key("inside diameter", "bore of the tube", "node", quantity="inside diameter"),
+        Key("outside diameter", "outside diameter of the tube", "node", quantity="outside diameter"),
+        Key("length", "heated length of one tube", "node", quantity="length"),
+        Key("parallel", "tubes that share the flow", "node", quantity="tubes in parallel"),
+        Key("height", "height of a plane wall", "node", quantity="height"),
+        Key("width", "width of a plane wall", "node", quantity="width"),
+        Key("area", "area of a plane wall", "node", quantity="area"),
+        Key("perimeter", "perimeter of a plane wall", "node", quantity="perimeter"),
+        Key("tubes", "tubes of a bundle", "node", later=True),
+        Key("passes", "tube passes", "node", later=True),
+        Key("plugged", "plugged tubes", "node", later=True),
+        Key("effective length", "length that transfers heat", "node", later=True),
+    ),
+)
+DEPOSIT = Description(
+    "a deposit",
+    "a fouling layer by thickness",
+    (
+        Key("thickness", "thickness of the layer", "node", quantity="thickness", required=True),
+        Key("conductivity", "conductivity of the layer", "node", quantity="wall conductivity", required=True),
+        Key("narrows", "whether it narrows the bore", "flag"),
+    ),
+)
+
+
+def term_description() -> Description:
+    """One entry of the resistance list (it may hold parallel terms, so it describes itself)."""
+    return TERM
+
+
+TERM = Description(
+    "a term",
+    "one entry of the resistance list",
+    (
+        Key("name", "name of the term", "name"),
+        Key("kind", "what resists", "choice", choices=TERM_KINDS),
+        Key("parallel", "terms side by side in place of one", "list", of=term_description),
+        Key("stream", "stream of the film", "name"),
+        Key("situation", "where the film acts", "name"),
+        Key("method", "method that is forced", "name"),
+        Key("with", "what the situation needs and the geometry does not give", "mapping"),
+        Key("coefficient", "stated film coefficient", "node", quantity="film coefficient"),
+        Key("resistance", "stated resistance per area", "node", quantity="area resistance"),
+        Key("on", "surface it is stated on: inside, outside, outside of <wall>", "name"),
+        Key("temperature", "bulk temperature of a stated film", "node", quantity="temperature"),
+        Key("material", "material card of a wall", "name"),
+        Key("conductivity", "stated wall conductivity", "node", quantity="wall conductivity"),
+        Key("thickness", "wall thickness", "node", quantity="thickness"),
+        Key("outside diameter", "outside diameter of the wall", "node", quantity="outside diameter"),
+        Key("deposit", "fouling layer by thickness", "mapping"),
+        Key("emissivity", "emissivity of the surface", "node", quantity="emissivity"),
+        Key("surroundings", "temperature the surface radiates to", "node", quantity="temperature"),
+        Key("includes", "terms that a stated coefficient already includes", "list"),
+        Key("holds for", "range in which a stated value holds: {symbol: low .. high}", "mapping"),
+        Key("scales with", "factor on a stated value, as a relation", "relation"),
+        Key("growth", "fouling growth", "node", later=True),
+        Key("fouling specified as", "fouling of the whole unit", "node", later=True),
+        Key("fins", "fins on the surface", "node", later=True),
+        Key("vapour velocity", "velocity of a vapour", "node", later=True),
+    ),
+)
+CRITERION = Description(
+    "a criterion",
+    "an acceptance criterion",
+    (
+        Key("that", "<result> <op> <quantity or given>", required=True, example="U_service >= 1000 W/(m^2 K)"),
+        Key("source", "document the criterion comes from"),
+    ),
+)
+REPORT = Description(
+    "report",
+    "how results are reported",
+    (
+        Key("U on", "surface of the U: inside, outside, outside of <wall>", "name", required=True),
+        Key("units", "SI, US customary, or a unit per quantity", "node"),
+    ),
+)
+ACCEPT = Description(
+    "an accepted check",
+    "the engineer's answer to a failed check",
+    (
+        Key("check", "id of the check", "name", required=True),
+        Key("in", "all, a condition or a case", "name"),
+        Key("down to", "lowest value of the checked figure that is accepted", "name"),
+        Key("up to", "highest value of the checked figure that is accepted", "name"),
+        Key("because", "the reason", required=True),
+        Key("by", "who accepts it", required=True),
+        Key("date", "YYYY-MM-DD", "date", required=True),
+    ),
+)
+FILE = Description(
+    "the calculation file",
+    "one calculation",
+    (
+        Key("calculation", "title block", "mapping", of=HEAD, required=True),
+        Key("purpose", "what decision the result serves", required=True),
+        Key("revisions", "revision history", "list", of=REVISION),
+        Key("givens", "named input quantities", "mapping",
+            of=Description("givens", "", free=Key("<symbol>", "symbol of a given", "mapping", of=GIVEN))),
+        Key("derived", "relations over givens", "mapping",
+            of=Description("derived", "", free=Key("<symbol>", "symbol of a derived quantity", "mapping", of=DERIVED))),
+        Key("assumptions", "statements taken as true", "mapping",
+            of=Description("assumptions", "", free=Key("<id>", "A1, A2 …", "mapping", of=ASSUMPTION))),
+        Key("fluids", "fluids of this calculation", "mapping",
+            of=Description("fluids", "", free=Key("<name>", "name of a fluid", "mapping", of=FLUID))),
+        Key("streams", "fluids with state and flow", "mapping",
+            of=Description("streams", "", free=Key("<name>", "name of a stream", "mapping", of=STREAM))),
+        Key("geometry", "shape and dimensions", "mapping", of=GEOMETRY, required=True),
+        Key("resistances", "terms in order, from the inside to the outside", "list", of=TERM, required=True),
+        Key("acceptance", "criteria stated before the result", "list", of=CRITERION),
+        Key("report", "how results are reported", "mapping", of=REPORT, required=True),
+        Key("cases", "named variations of the givens", "mapping",
+            of=Description("cases", "", free=Key("<case>", "name of a case", "mapping"))),
+        Key("accept", "answers to failed checks", "list", of=ACCEPT),
+        Key("duty", "duty of the unit", "node", later=True),
+        Key("sweep", "sweep over givens", "node", later=True),
+        Key("evaluate at", "places along the unit", "node", later=True),
+        Key("survey", "plant data", "node", later=True),
+    ),
+)
+PERSON = Description(
+    "a person",
+    "a person of the book",
+    (
+        Key("name", "name as it is signed", required=True),
+        Key("also", "other spellings", "list"),
+    ),
+)
+BOOK_LIMITS = Description(
+    "limits",
+    "limits of the site",
+    (
+        Key("surface temperature", "hottest surface a person may touch", "node"),
+        Key("excess surface", "largest excess surface due to fouling", "node"),
+    ),
+)
+BOOK = Description(
+    "the book file",
+    "settings of a book",
+    (
+        Key("book", "name of the book", required=True),
+        Key("site pressure", "absolute pressure of the site", "node"),
+        Key("units", "SI or US customary", "choice", choices=("SI", "US customary")),
+        Key("output", "folder of the records, from the book's folder", "name"),
+        Key("revisions", "scheme of revision names", "choice", choices=("letters", "numbers", "letters then numbers")),
+        Key("roles", "roles that sign", "list"),
+        Key("people", "people by id", "mapping",
+            of=Description("people", "", free=Key("<id>", "id of a person", "mapping", of=PERSON))),
+        Key("limits", "limits of the site", "mapping", of=BOOK_LIMITS),
+        Key("open items", "what open items block", "choice", choices=("refuse final issue", "refuse any issue")),
+    ),
+)

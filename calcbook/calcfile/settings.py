@@ -1,0 +1,88 @@
+"""book.yaml to ``Settings``."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+from calcbook.calcfile import descriptions as described
+from calcbook.calcfile.calculation import Settings, Value
+from calcbook.calcfile.meaning import meaning_of
+from calcbook.documents import Fields, Node, Scalar, Sequence, read_file, read_mapping
+from calcbook.documents import Mapping as MappingNode
+from calcbook.faults import Collector
+from calcbook.quantities import QuantityFault, read_any
+
+BOOK_FILE = "book.yaml"
+
+
+def read_settings(folder: Path) -> Settings:
+    """The settings of the book in a folder, or the defaults where it has no book.yaml.
+
+    Raises ``Faults`` with every mistake of book.yaml.
+    """
+    path = folder / BOOK_FILE
+    if not path.is_file():
+        return Settings()
+    collector = Collector()
+    document = read_file(path)
+    fields = read_mapping(document.root, described.BOOK, collector, document.root.place)
+    limits_node = fields.node("limits")
+    limits = read_mapping(limits_node, described.BOOK_LIMITS, collector, fields.place) if limits_node else Fields(
+        fields.place)
+    settings = Settings(
+        name=fields.text("book"),
+        site_pressure=_value(fields.node("site pressure"), collector),
+        units=fields.text("units"),
+        output=fields.text("output"),
+        revisions=fields.text("revisions", "letters"),
+        roles=_texts(fields.node("roles")) or ("prepared", "checked", "approved"),
+        people=_people(fields.node("people"), collector),
+        surface_temperature=_value(limits.node("surface temperature"), collector),
+        excess_surface=_value(limits.node("excess surface"), collector),
+        open_items=fields.text("open items", "refuse final issue"),
+        plain=_calculating(document.root),
+    )
+    collector.stop_if_any()
+    return settings
+
+
+def _calculating(root: Node) -> object:
+    """The settings that a calculation reads: the rest of the book does not belong to its meaning."""
+    meaning = meaning_of(root)
+    assert isinstance(meaning, dict)
+    return {name: meaning[name] for name in ("site pressure", "units", "limits") if name in meaning}
+
+
+def _value(node: Node | None, collector: Collector) -> Value | None:
+    if node is None:
+        return None
+    source, has_source, scalar = "", False, node
+    if isinstance(node, MappingNode):
+        fields = read_mapping(node, described.SOURCED, collector, node.place)
+        found = fields.scalar("value")
+        if found is None:
+            return None
+        scalar, source, has_source = found, fields.text("source"), "source" in fields
+    if not isinstance(scalar, Scalar):
+        collector.add("value-not-text", node.place, "a number with its unit is wanted here")
+        return None
+    try:
+        return Value(scalar.text, scalar.place, quantity=read_any(scalar.text), source=source, has_source=has_source)
+    except QuantityFault as error:
+        collector.add(error.code, scalar.place, error.message, found=error.found, expected=error.expected,
+                      nearest=error.nearest)
+        return None
+
+
+def _texts(node: Node | None) -> tuple[str, ...]:
+    items = node.items if isinstance(node, Sequence) else ()
+    return tuple(item.text for item in items if isinstance(item, Scalar))
+
+
+def _people(node: Node | None, collector: Collector) -> dict[str, tuple[str, ...]]:
+    people = {}
+    if isinstance(node, MappingNode):
+        for key, value in node.entries:
+            fields = read_mapping(value, described.PERSON, collector, value.place)
+            people[key.text] = (fields.text("name"), *_texts(fields.node("also")))
+    return people
