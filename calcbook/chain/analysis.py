@@ -1,0 +1,544 @@
+"""A chain to a solved calculation: every case and condition, with checks, criteria and open items."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+
+import numpy as np
+
+from calcbook.chain.checks import apply_acceptances, evaluate_check
+from calcbook.chain.circuit import branch_coefficient
+from calcbook.chain.findings import assumptions_of, jump_items, stream_findings, wall_checks
+from calcbook.chain.outcome import (
+    BranchRow,
+    CaseOutcome,
+    CheckResult,
+    ClosureRow,
+    CriterionResult,
+    CrossRow,
+    PropertyRow,
+    Result,
+    SensitivityRow,
+    Solved,
+    StepRow,
+    TermChain,
+    TermRow,
+)
+from calcbook.chain.sensitivity import derivatives
+from calcbook.chain.solve import Solution, solve
+from calcbook.chain.types import CLEAN, CONDITIONS, SERVICE, Branch, Candidate, Chain, ChainStep, Group, Layer, OpenItem
+from calcbook.faults import Collector, nearest_names, shown
+from calcbook.library import vocabulary
+from calcbook.quantities import QuantityFault, as_kind
+
+CONTROLLING_SHARE = 0.5
+OPPOSITE = {">=": 1.0, ">": 1.0, "<=": -1.0, "<": -1.0}
+
+
+class NotConverged(Exception):
+    """A case that has no solution: no record is written for it."""
+
+    def __init__(self, number: str, case: str, condition: str):
+        self.number, self.case, self.condition = number, case, condition
+        where = f"case {case}, " if case else ""
+        super().__init__(f"{number}: {where}{condition} did not converge")
+
+
+def analyse(chain: Chain, collector: Collector) -> Solved | None:
+    """Solve every case in both conditions and evaluate everything the record holds.
+
+    Faults of state (a liquid that is vapour, a wall turned inside out) and of acceptance go to the
+    collector; None is returned then. Raises ``NotConverged``.
+    """
+    return _Analysis(chain, collector).solved()
+
+
+class _Analysis:
+    def __init__(self, chain: Chain, collector: Collector):
+        self.chain = chain
+        self.collector = collector
+        self.dimensions = _dimensions(chain)
+        self.used_cards: dict[str, str] = dict(chain.cards)
+
+    def solved(self) -> Solved | None:
+        names = ("", *self.chain.calculation.cases)
+        findings = {name: stream_findings(self.chain, name, self.collector) for name in names}
+        if self.collector:
+            return None
+        cases = []
+        for name in names:
+            case = self._case(name, findings[name])
+            if case is None:
+                return None
+            cases.append(case)
+        cases = self._with_acceptances(cases)
+        if self.collector:
+            return None
+        cross = self._cross(cases[0])
+        return Solved(self.chain, tuple(cases), cross, self._sensitivity(cases[0]), self.used_cards,
+                      _governing(cases))
+
+    # -- one case -----------------------------------------------------------------------------------
+
+    def _case(self, name: str, state_items: tuple[OpenItem, ...]) -> CaseOutcome | None:
+        inputs = self.chain.case_inputs(name)
+        solutions = {condition: solve(self.chain, inputs, condition) for condition in CONDITIONS}
+        for condition, solution in solutions.items():
+            if not bool(np.all(solution.converged)) or not np.isfinite(solution.number(self.chain.results["U"])):
+                self._stop_if_limit(name, solution)
+                if self.collector:
+                    return None
+                raise NotConverged(self.chain.calculation.number, name, condition)
+        results = self._results(solutions)
+        checks = self._checks(name, solutions)
+        for check in checks:
+            if check.level == "stop" and check.state == "outside":
+                self._report_stop(check)
+        criteria = self._criteria(name, results, inputs, solutions)
+        terms = {condition: self._terms(solution) for condition, solution in solutions.items()}
+        controlling, share = _controlling(terms[SERVICE])
+        return CaseOutcome(
+            name=name,
+            inputs={key: float(value) for key, value in inputs.items()},
+            solutions=solutions,
+            results=results,
+            terms=terms,
+            chains=self._chains(solutions),
+            circuit=self._rows(self.chain.circuit, solutions),
+            properties=self._properties(solutions),
+            checks=checks,
+            criteria=criteria,
+            assumptions=assumptions_of(self.chain, solutions),
+            open_items=(*self.chain.open_items, *state_items, *jump_items(self.chain, name, solutions)),
+            closure=self._closure(solutions),
+            controlling=controlling,
+            controlling_share=share,
+        )
+
+    def _stop_if_limit(self, name: str, solution: Solution) -> None:
+        """A stop limit that explains a missing number is a fault, not a failure to converge."""
+        for check in self._limits(solution):
+            result = evaluate_check(check, solution, name, self.dimensions)
+            if result.level == "stop" and result.state == "outside":
+                self._report_stop(result)
+
+    def _report_stop(self, check: CheckResult) -> None:
+        term = next((term for term in self.chain.calculation.resistances if term.name == check.owner), None)
+        place = term.place if term is not None else self.chain.calculation.place
+        self.collector.add("limit-stops", place, f"{check.id}: no number is given outside this limit",
+                           found=check.figure, expected=f"{check.limit} ({check.because})")
+
+    # -- results ------------------------------------------------------------------------------------
+
+    def _results(self, solutions: Mapping[str, Solution]) -> dict[str, Result]:
+        kinds = vocabulary()
+        results: dict[str, Result] = {}
+
+        def put(name: str, value: float, kind: str, title: str) -> None:
+            if math.isfinite(value):
+                results[name] = Result(name, value, kinds[kind], title)
+
+        table = self.chain.results
+        for condition, solution in reversed(solutions.items()):
+            put(f"U_{condition}", solution.number(table["U"]), "overall coefficient", f"overall coefficient, {condition}")
+            for surface in self.chain.surfaces:
+                put(f"U_{condition} on {surface.name}", solution.number(table[f"U on {surface.name}"]),
+                    "overall coefficient", f"overall coefficient on {surface.name}, {condition}")
+            put(f"UA_{condition}", solution.number(table["UA"]), "conductance", f"conductance, {condition}")
+            if "heat flux" in table:
+                put(f"heat_flux_{condition}", solution.number(table["heat flux"]), "heat flux", f"heat flux, {condition}")
+                put(f"heat_flow_{condition}", solution.number(table["heat flow"]), "heat flow", f"heat flow, {condition}")
+        clean, service = (results[f"U_{condition}"].value for condition in CONDITIONS)
+        put("cleanliness", service / clean, "ratio", "cleanliness, U_service/U_clean")
+        put("excess_surface", clean / service - 1.0, "ratio", "excess surface, U_clean/U_service − 1")
+        for condition, solution in reversed(solutions.items()):
+            for name, value in self._interfaces(solution):
+                put(f"T {name} {condition}", value, "temperature", f"temperature {name}, {condition}")
+            for element in self.chain.elements:
+                if isinstance(element, Group):
+                    put(f"h {element.name} {condition}", solution.number(table[f"h {element.name}"]), "film coefficient",
+                        f"film coefficient {element.name}, {condition}")
+                put(f"R {element.name} {condition}", solution.number(table[f"R {element.name}"]), "area resistance",
+                    f"resistance of {element.name} on the basis area, {condition}")
+        self._stream_results(solutions[SERVICE], put)
+        return results
+
+    def _stream_results(self, solution: Solution, put) -> None:  # type: ignore[no-untyped-def]
+        for group in (self.chain.inner, self.chain.outer):
+            for branch in group.branches:
+                for mark, name, kind in (("speed", "speed", "speed"), ("Re", "Re", "Reynolds number")):
+                    step = f"{branch.name}/{mark}"
+                    if branch.stream and step in solution.values:
+                        put(f"{name} {branch.stream}", solution.number(step), kind, f"{kind} of {branch.stream}")
+
+    def _interfaces(self, solution: Solution) -> list[tuple[str, float]]:
+        """Temperatures between terms, from the inside to the outside, and of both wetted surfaces."""
+        if not self.chain.has_temperatures:
+            return []
+        temperatures = self._temperatures(solution)
+        found = [("inside surface", temperatures[1]), ("outside surface", temperatures[-2])]
+        for index, (before, after) in enumerate(zip(self.chain.elements, self.chain.elements[1:], strict=False), 1):
+            found.append((f"{before.name} to {after.name}", temperatures[index]))
+        return found
+
+    def _temperatures(self, solution: Solution) -> list[float]:
+        """Temperature before the first element, between elements, and after the last one."""
+        if not self.chain.has_temperatures:
+            return [math.nan] * (len(self.chain.elements) + 1)
+        flow = solution.number("solution/Q")
+        temperatures = [solution.number(self.chain.inner.bulk)]
+        for element in self.chain.elements[:-1]:
+            if isinstance(element, Group):
+                temperatures.append(solution.number(element.surface_temperature))
+            elif element.second_temperature:
+                temperatures.append(solution.number(element.second_temperature))
+            else:
+                area = solution.number(self.chain.surfaces[element.surface].area)
+                temperatures.append(temperatures[-1] - flow * solution.number(element.resistance) / area)
+        temperatures[-1] = solution.number(self.chain.outer.surface_temperature)
+        return [*temperatures, solution.number(self.chain.outer.bulk)]
+
+    def _terms(self, solution: Solution) -> tuple[TermRow, ...]:
+        temperatures = self._temperatures(solution)
+        total = solution.number(self.chain.results["R total"])
+        rows = []
+        for index, element in enumerate(self.chain.elements):
+            resistance = solution.number(self.chain.results[f"R {element.name}"])
+            coefficient, methods = math.nan, ""
+            branches: tuple[BranchRow, ...] = ()
+            if isinstance(element, Group):
+                coefficient = solution.number(self.chain.results[f"h {element.name}"])
+                own = 1.0 / coefficient
+                methods = ", ".join(chosen(branch, solution).method.id for branch in element.branches)
+                branches = self._branches(element, solution) if len(element.branches) > 1 else ()
+            else:
+                own = solution.number(element.resistance)
+                methods = element.material
+            rows.append(TermRow(element.name, _kind(element), self.chain.surfaces[element.surface].name, own, resistance,
+                                resistance / total, coefficient, temperatures[index], temperatures[index + 1], methods,
+                                branches))
+        return tuple(rows)
+
+    def _branches(self, group: Group, solution: Solution) -> tuple[BranchRow, ...]:
+        area = solution.number(self.chain.surfaces[group.surface].area)
+        surface = solution.number(group.surface_temperature) if self.chain.has_temperatures else math.nan
+        outward = -1.0 if group.side == "inside" else 1.0
+        rows = []
+        for branch in group.branches:
+            coefficient = solution.number(branch_coefficient(group, branch.name))
+            reference = solution.number(branch.reference) if branch.reference else math.nan
+            flow = coefficient * area * outward * (surface - reference)
+            rows.append(BranchRow(branch.name, branch.kind, coefficient, reference, flow))
+        return tuple(rows)
+
+    # -- chain rows ---------------------------------------------------------------------------------
+
+    def _rows(self, steps: tuple[ChainStep, ...], solutions: Mapping[str, Solution]) -> tuple[StepRow, ...]:
+        return tuple(StepRow(step, _value(solutions[CLEAN], step.id), _value(solutions[SERVICE], step.id))
+                     for step in steps)
+
+    def _chains(self, solutions: Mapping[str, Solution]) -> tuple[TermChain, ...]:
+        """The rows of every term, each step once, at the term that uses it first."""
+        seen: set[str] = set()
+        chains = []
+        owners = [("givens and geometry", self.chain.steps)] if self.chain.steps else []
+        for owner, steps in owners:
+            chains.append(TermChain(owner, "figures that terms share", self._rows(steps, solutions), ()))
+            seen |= {step.id for step in steps}
+        for element in self.chain.elements:
+            steps: list[ChainStep] = []
+            notes: list[str] = []
+            if isinstance(element, Layer):
+                steps += element.steps
+            else:
+                for branch in element.branches:
+                    steps += self._branch_steps(branch, solutions)
+                    notes += _branch_notes(branch, solutions)
+            fresh = tuple({step.id: step for step in steps if step.id not in seen}.values())
+            seen |= {step.id for step in fresh}
+            chains.append(TermChain(element.name, _title(element), self._rows(fresh, solutions), tuple(notes)))
+        return tuple(chains)
+
+    def _branch_steps(self, branch: Branch, solutions: Mapping[str, Solution]) -> list[ChainStep]:
+        steps = list(branch.choice_steps)
+        for condition in CONDITIONS:
+            candidate = chosen(branch, solutions[condition])
+            steps += candidate.steps
+            self.used_cards |= {f"method {card.id}": card.digest_text for card in candidate.cards}
+        return steps
+
+    def _properties(self, solutions: Mapping[str, Solution]) -> tuple[PropertyRow, ...]:
+        """Properties of streams by place, as far as the chain asked for them."""
+        rows = []
+        for state in self.chain.streams.values():
+            bulk = self._property_row(state, "bulk", "", f"stream {state.name}", state.temperature, solutions[SERVICE])
+            if bulk is not None:
+                rows.append(bulk)
+            for group in (self.chain.inner, self.chain.outer):
+                for branch in group.branches:
+                    if branch.stream != state.name:
+                        continue
+                    for place, temperature in (("film", f"{branch.name}/film/T"), ("surface", group.surface_temperature)):
+                        for condition in CONDITIONS:
+                            row = self._property_row(state, place, condition, f"{branch.name}/{place}", temperature,
+                                                     solutions[condition])
+                            if row is not None:
+                                rows.append(row)
+        return tuple(rows)
+
+    def _property_row(self, state, place: str, condition: str, prefix: str, temperature: str, solution: Solution  # type: ignore[no-untyped-def]
+                      ) -> PropertyRow | None:
+        names = ("density", "viscosity", "conductivity", "heat capacity", "expansion coefficient")
+        used = {name: solution.number(f"{prefix}/{name}") for name in names if f"{prefix}/{name}" in solution.values}
+        if not used or temperature not in solution.values:
+            return None
+        pressure = solution.number(state.pressure) if state.pressure else math.nan
+        at = solution.number(temperature)
+        bulk = solution.number(state.temperature)
+        fraction = solution.number(state.fraction) if state.fraction else None
+        fluid = state.fluid.state(None if math.isnan(pressure) else pressure, fraction, state.phase)
+        phase = state.phase or fluid.phase_at(bulk)
+        return PropertyRow(state.name, place, condition, at, pressure, phase, used, state.fluid_name)
+
+    # -- checks and criteria ------------------------------------------------------------------------
+
+    def _limits(self, solution: Solution) -> list:  # type: ignore[type-arg]
+        limits = list(self.chain.checks)
+        for element in self.chain.elements:
+            if isinstance(element, Layer):
+                limits += element.checks
+                continue
+            for branch in element.branches:
+                limits += chosen(branch, solution).checks
+        return limits
+
+    def _checks(self, name: str, solutions: Mapping[str, Solution]) -> tuple[CheckResult, ...]:
+        results = []
+        for condition in reversed(CONDITIONS):
+            solution = solutions[condition]
+            results += [evaluate_check(check, solution, name, self.dimensions) for check in self._limits(solution)]
+            results += wall_checks(self.chain, name, solution)
+        return tuple(results)
+
+    def _criteria(self, case: str, results: Mapping[str, Result], inputs: Mapping[str, np.ndarray],
+                  solutions: Mapping[str, Solution]) -> tuple[CriterionResult, ...]:
+        found = []
+        for number, criterion in enumerate(self.chain.calculation.acceptance, 1):
+            result = results.get(criterion.result)
+            if result is None:
+                if not case:
+                    self.collector.add("result-unknown", criterion.place, f"there is no result `{shown(criterion.result)}`",
+                                       found=shown(criterion.result), expected=", ".join(results),
+                                       nearest=nearest_names(criterion.result, results))
+                continue
+            limit = self._limit_of(criterion, result, solutions[SERVICE])
+            if limit is None:
+                continue
+            margin = (result.value - limit) * OPPOSITE[criterion.operator]
+            met = margin >= 0.0 if "=" in criterion.operator else margin > 0.0
+            found.append(CriterionResult(f"criterion {number}", case, criterion.text, result.value, limit, margin, met,
+                                         result.kind, criterion.source))
+        return tuple(found)
+
+    def _limit_of(self, criterion, result: Result, solution: Solution) -> float | None:  # type: ignore[no-untyped-def]
+        value = criterion.limit
+        if value.symbol:
+            name = next((f"{kind}/{value.symbol}" for kind in ("given", "derived")
+                         if f"{kind}/{value.symbol}" in solution.values), "")
+            if not name:
+                known = [*self.chain.calculation.givens, *self.chain.calculation.derived]
+                self.collector.add("symbol-unknown", value.place, f"`{shown(value.symbol)}` is neither a given nor derived",
+                                   found=value.symbol, expected=", ".join(known), nearest=nearest_names(value.symbol, known))
+                return None
+            if self.dimensions.get(name) != result.kind.dimension:
+                self.collector.add("unit-dimension", value.place, f"`{value.symbol}` is no {result.kind.name}",
+                                   found=value.symbol, expected=result.kind.unit)
+                return None
+            return solution.number(name)
+        try:
+            return as_kind(value.quantity, result.kind).value
+        except QuantityFault as error:
+            self.collector.add(error.code, value.place, error.message, found=error.found, expected=error.expected,
+                               nearest=error.nearest)
+            return None
+
+    def _with_acceptances(self, cases: list[CaseOutcome]) -> list[CaseOutcome]:
+        """Apply the file's acceptances over all cases at once, then add the open items that remain."""
+        from dataclasses import replace
+
+        every = tuple(check for case in cases for check in case.checks)
+        settled = apply_acceptances(self.chain, every, self.collector)
+        result, start = [], 0
+        for case in cases:
+            checks = settled[start : start + len(case.checks)]
+            start += len(case.checks)
+            items = (*case.open_items, *_open_checks(checks))
+            result.append(replace(case, checks=checks, open_items=items))
+        return result
+
+    # -- cross-check, closure, sensitivity ----------------------------------------------------------
+
+    def _cross(self, base: CaseOutcome) -> tuple[CrossRow, ...]:
+        """Every other method of a film's situation, put in its place and the circuit closed again."""
+        rows = []
+        inputs = self.chain.case_inputs("")
+        reference = base.results["U_service"].value
+        for group in (self.chain.inner, self.chain.outer):
+            for branch in group.branches:
+                if branch.situation is None:
+                    continue
+                used = chosen(branch, base.solutions[SERVICE])
+                others = [candidate for candidate in (*branch.candidates, *branch.alternatives) if candidate is not used]
+                order = {method: place for place, method in enumerate(branch.situation.methods)}
+                others.sort(key=lambda candidate: order.get(candidate.method.id, len(order)))
+                rows += [self._cross_row(branch, used, other, inputs, reference) for other in others]
+                rows += [CrossRow(branch.name, method, "", "", False, math.nan, math.nan, math.nan, reason)
+                         for method, reason in branch.unusable.items()]
+        return tuple(rows)
+
+    def _cross_row(self, branch: Branch, used: Candidate, other: Candidate, inputs: Mapping[str, np.ndarray],
+                   reference: float) -> CrossRow:
+        solution = solve(self.chain, inputs, SERVICE, {branch.name: other})
+        same = other.method.family == used.method.family
+        reason = ""
+        if not bool(np.all(solution.converged)):
+            reason = "does not close here"
+        else:
+            failed = [evaluate_check(check, solution, "", self.dimensions) for check in other.checks]
+            failed = [check for check in failed if check.level in ("stop", "range")
+                      and check.state in ("outside", "not evaluable")]
+            if failed:
+                reason = f"outside its range: {failed[0].figure}, limit {failed[0].limit}"
+        overall = solution.number(self.chain.results["U"])
+        coefficient = solution.number(other.coefficient) if other.coefficient in solution.values else math.nan
+        return CrossRow(branch.name, other.method.id, other.method.title, other.method.family, same, coefficient, overall,
+                        overall / reference - 1.0, reason)
+
+    def _closure(self, solutions: Mapping[str, Solution]) -> tuple[ClosureRow, ...]:
+        """Heat flow through each element from its two temperatures, summed drops, U·A on each surface."""
+        if not self.chain.has_temperatures:
+            return self._closure_of_areas(solutions)
+        rows = []
+        for condition in reversed(CONDITIONS):
+            solution = solutions[condition]
+            flow = solution.number(self.chain.results["heat flow"])
+            for term in self._terms(solution):
+                surface = next(surface for surface in self.chain.surfaces if surface.name == term.surface)
+                if term.own_resistance == 0.0:
+                    continue
+                through = solution.number(surface.area) / term.own_resistance * (
+                    term.inner_temperature - term.outer_temperature)
+                rows.append(ClosureRow(f"heat flow through {term.name}", condition, through, flow,
+                                       _residual(through, flow), "W"))
+            temperatures = self._temperatures(solution)
+            summed = sum(before - after for before, after in zip(temperatures, temperatures[1:], strict=False))
+            whole = temperatures[0] - temperatures[-1]
+            rows.append(ClosureRow("summed temperature drops", condition, summed, whole, _residual(summed, whole), "K"))
+        return (*rows, *self._closure_of_areas(solutions))
+
+    def _closure_of_areas(self, solutions: Mapping[str, Solution]) -> tuple[ClosureRow, ...]:
+        rows = []
+        for condition in reversed(CONDITIONS):
+            solution = solutions[condition]
+            conductance = solution.number(self.chain.results["UA"])
+            for surface in self.chain.surfaces:
+                value = solution.number(self.chain.results[f"U on {surface.name}"]) * solution.number(surface.area)
+                rows.append(ClosureRow(f"U·A on {surface.name}", condition, value, conductance,
+                                       _residual(value, conductance), "W/K"))
+        return tuple(rows)
+
+    def _sensitivity(self, base: CaseOutcome) -> tuple[SensitivityRow, ...]:
+        """1 % of each figure (1 K of a temperature), ranked by what it moves U in service by."""
+        name = self.chain.results["U"]
+        slopes = derivatives(self.chain, self.chain.case_inputs(""), SERVICE, (name,))[name]
+        reference = base.results["U_service"].value
+        rows = []
+        for key, slope in slopes.items():
+            item = self.chain.inputs[key]
+            temperature = item.kind.scale == "point" or item.kind.name == "temperature difference"
+            move = 1.0 if temperature else 0.01 * base.inputs[key]
+            change = float(np.asarray(slope).ravel()[0]) * move
+            if math.isfinite(change) and change != 0.0:
+                rows.append(SensitivityRow(item, "1 K" if temperature else "1 %", change, change / reference))
+        order = {key: place for place, key in enumerate(self.chain.inputs)}
+        return tuple(sorted(rows, key=lambda row: (-float(f"{abs(row.change):.9g}"), order[row.input.id])))
+
+
+# --- small helpers ----------------------------------------------------------------------------------
+
+
+def chosen(branch: Branch, solution: Solution) -> Candidate:
+    """The candidate that a film used in a single record."""
+    place = solution.chosen.get(branch.name)
+    return branch.candidates[int(np.asarray(place).ravel()[0]) if place is not None else 0]
+
+
+def _dimensions(chain: Chain) -> dict[str, tuple]:
+    """The dimension of every figure of a chain by id."""
+    return dict(chain.dimensions)
+
+
+def _value(solution: Solution, name: str) -> float | bool:
+    value = solution.values.get(name)
+    if value is None:
+        return math.nan
+    item = np.asarray(value).ravel()[0]
+    return bool(item) if isinstance(item, np.bool_) else float(item)
+
+
+def _kind(element: Group | Layer) -> str:
+    if isinstance(element, Layer):
+        return element.kind
+    return "parallel" if len(element.branches) > 1 else element.branches[0].kind
+
+
+def _title(element: Group | Layer) -> str:
+    if isinstance(element, Layer):
+        return element.material or element.kind
+    return " beside ".join(branch.situation.title if branch.situation is not None else branch.kind
+                           for branch in element.branches)
+
+
+def _branch_notes(branch: Branch, solutions: Mapping[str, Solution]) -> list[str]:
+    """Which method acts, in one sentence; two where clean and service differ."""
+    clean, service = (chosen(branch, solutions[condition]) for condition in CONDITIONS)
+    if branch.situation is None:
+        return [f"{branch.name}: {service.because}."]
+    if clean is service:
+        return [f"{branch.name}: {service.method.title} ({service.method.id}), {service.because}."]
+    return [f"{branch.name}, service: {service.method.title} ({service.method.id}), {service.because}.",
+            f"{branch.name}, clean: {clean.method.title} ({clean.method.id}), {clean.because}."]
+
+
+def _controlling(terms: tuple[TermRow, ...]) -> tuple[str, float]:
+    largest = max(terms, key=lambda term: term.share)
+    return (largest.name, largest.share) if largest.share >= CONTROLLING_SHARE else ("", largest.share)
+
+
+def _residual(value: float, against: float) -> float:
+    return abs(value - against) / abs(against) if against else abs(value)
+
+
+def _open_checks(checks: tuple[CheckResult, ...]) -> list[OpenItem]:
+    """Range limits that are outside or cannot be evaluated, and stop limits that cannot."""
+    items: dict[str, OpenItem] = {}
+    for check in checks:
+        blocking = check.level == "range" and check.state in ("outside", "not evaluable")
+        blocking |= check.level == "stop" and check.state == "not evaluable"
+        if not blocking:
+            continue
+        where = f"case {check.case}, {check.condition}" if check.case else check.condition
+        beyond = f"; {check.accepted}" if check.accepted else ""
+        text = f"{check.id} ({where}): {check.figure}, limit {check.limit}: {check.state}{beyond}."
+        items.setdefault(f"{check.id} / {where}", OpenItem(f"{check.id} / {where}", "check", text))
+    return list(items.values())
+
+
+def _governing(cases: list[CaseOutcome]) -> str:
+    """The case with the smallest margin of the first criterion, else with the lowest U in service."""
+    if len(cases) == 1:
+        return ""
+    if all(case.criteria for case in cases):
+        return min(cases, key=lambda case: case.criteria[0].margin).name or "base"
+    return min(cases, key=lambda case: case.results["U_service"].value).name or "base"

@@ -1,0 +1,626 @@
+"""Calculation and cards to a chain: names, units, methods and order resolved, every fault collected."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+from calcbook.calcfile import Calculation
+from calcbook.calcfile.calculation import Derived, Term, Value
+from calcbook.chain.films import FilmScope
+from calcbook.chain.scope import Scope
+from calcbook.chain.streams import lay_out_stream
+from calcbook.chain.surfaces import Shape, Wall, lay_out_shape
+from calcbook.chain.types import (
+    Branch,
+    Candidate,
+    Chain,
+    ChainCheck,
+    ChainStep,
+    Element,
+    Group,
+    Input,
+    Layer,
+    StreamState,
+)
+from calcbook.faults import Collector, Faults, nearest_names, shown
+from calcbook.formulas import Relation, RelationFault, dimension, parse_expression
+from calcbook.library import Library, vocabulary
+from calcbook.library.cards import Limit, Method
+from calcbook.library.conductivity import ConductivityTable
+from calcbook.library.operations import RelationOperation
+from calcbook.quantities import DIMENSIONLESS, QuantityFault, QuantityKind, as_kind
+
+WALL_CARDS = {"tube": "wall-cylinder", "plane": "wall-plane", "sphere": "wall-sphere"}
+
+
+def build(calculation: Calculation, library: Library, collector: Collector) -> Chain | None:
+    """The chain of a calculation. Faults go to the collector; None when too little is left to build."""
+    return _Builder(calculation, library, collector).chain()
+
+
+class _Builder:
+    def __init__(self, calculation: Calculation, library: Library, collector: Collector):
+        self.calculation = calculation
+        self.library = library
+        self.collector = collector
+        self.scope = Scope(calculation, collector)
+        self.streams: dict[str, StreamState] = {}
+        self.checks: list[ChainCheck] = []
+
+    def chain(self) -> Chain | None:
+        calculation, scope = self.calculation, self.scope
+        self._givens()
+        self._derived()
+        self.streams = {name: state for name, stream in calculation.streams.items()
+                        if (state := lay_out_stream(scope, stream)) is not None}
+        terms = calculation.resistances
+        walls = tuple(term for term in terms if term.kind == "wall")
+        if calculation.geometry is None or not calculation.geometry.shape or not terms:
+            return None
+        shape = lay_out_shape(scope, calculation.geometry, walls)
+        if not self._order_holds(terms) or shape is None:
+            self._mark_unused()
+            return None
+        elements = self._elements(terms, shape)
+        basis = shape.surface_named(scope, calculation.report.u_on, calculation.report.u_on_place) \
+            if calculation.report.u_on else None
+        self._check_temperatures(elements)
+        self._assumptions_of_engineer()
+        if self.collector or basis is None or elements is None:
+            self._mark_unused()
+            return None
+        circuit, results = lay_out_circuit(scope, elements, shape, basis)
+        return self._finished(elements, shape, basis, circuit, results)
+
+    def _finished(self, elements: tuple[Element, ...], shape: Shape, basis: int, circuit: tuple[ChainStep, ...],
+                  results: dict[str, str]) -> Chain:
+        scope = self.scope
+        inner = {step.id for element in elements for step in _steps_of(element)} | {step.id for step in circuit}
+        static = tuple(step for step in scope.steps.values() if step.id not in inner)
+        self._mark_unused()
+        return Chain(
+            calculation=self.calculation,
+            library=self.library,
+            inputs={**self._typed_givens(), **scope.inputs},
+            steps=static,
+            elements=elements,
+            surfaces=shape.surfaces,
+            basis=basis,
+            circuit=circuit,
+            streams=self.streams,
+            checks=tuple(self.checks),
+            assumptions=tuple(scope.assumptions.values()),
+            open_items=tuple(scope.open_items.values()),
+            used_in={symbol: tuple(dict.fromkeys(places)) for symbol, places in scope.used_in.items()},
+            cards=dict(scope.cards),
+            results=results,
+            constants=dict(scope.constants),
+            dimensions=dict(scope.dimensions),
+            per_metre=shape.per_metre,
+            restated={case: {symbol: self._restated_value(symbol, given.value) for symbol, given in changes.items()}
+                      for case, changes in self.calculation.cases.items()},
+        )
+
+    def _restated_value(self, symbol: str, value: Value) -> float:
+        assert value.quantity is not None
+        kind = self.scope.kinds.get(symbol)
+        return as_kind(value.quantity, kind).value if kind is not None else value.quantity.value
+
+    # -- givens and derived -------------------------------------------------------------------------
+
+    def _givens(self) -> None:
+        for symbol, given in self.calculation.givens.items():
+            assert given.value.quantity is not None
+            self.scope.dimensions[f"given/{symbol}"] = given.value.quantity.dimension
+            self.scope.check_source(given.value, f"given/{symbol}")
+        for case, changes in self.calculation.cases.items():
+            for symbol, given in changes.items():
+                self.scope.check_source(given.value, f"case {case}/{symbol}")
+
+    def _typed_givens(self) -> dict[str, Input]:
+        """Every given as an input of the chain, with the kind that its uses gave it."""
+        typed = {}
+        for symbol, given in self.calculation.givens.items():
+            quantity = given.value.quantity
+            assert quantity is not None
+            kind = self.scope.kinds.get(symbol) or _kind_of_dimension(quantity.dimension, quantity.reading)
+            figure = as_kind(quantity, kind).value if symbol in self.scope.kinds else quantity.value
+            typed[f"given/{symbol}"] = Input(f"given/{symbol}", symbol, given.meaning, kind, figure, given.value.text,
+                                             given.source, given.place, True)
+        return typed
+
+    def _derived(self) -> None:
+        """Derived quantities in the order of what they need; a circle is told in full."""
+        waiting = dict(self.calculation.derived)
+        while waiting:
+            ready = [item for item in waiting.values() if not any(symbol in waiting for symbol in item.relation.symbols)]
+            if not ready:
+                self._report_circle(waiting)
+                return
+            for item in ready:
+                del waiting[item.symbol]
+                self._derived_step(item)
+
+    def _report_circle(self, waiting: dict[str, Derived]) -> None:
+        start = min(waiting.values(), key=lambda item: item.place)
+        path = [start.symbol]
+        while True:
+            following = next(symbol for symbol in waiting[path[-1]].relation.symbols if symbol in waiting)
+            if following in path:
+                path = [*path[path.index(following):], following]
+                break
+            path.append(following)
+        self.collector.add("derived-circular", waiting[path[0]].place, "derived quantities need each other in a circle",
+                           found=" needs ".join(path), expected="relations that end at givens")
+
+    def _derived_step(self, item: Derived) -> None:
+        inputs = {}
+        for symbol in item.relation.symbols:
+            if symbol in self.calculation.givens:
+                inputs[symbol] = f"given/{symbol}"
+            elif symbol in self.calculation.derived:
+                inputs[symbol] = f"derived/{symbol}"
+            else:
+                known = [*self.calculation.givens, *self.calculation.derived]
+                self.collector.add("symbol-unknown", item.place, f"`{shown(symbol)}` is neither a given nor derived",
+                                   found=shown(symbol), expected=", ".join(known), nearest=nearest_names(symbol, known))
+                return
+            self.scope.used_in.setdefault(symbol, []).append(f"derived {item.symbol}")
+        if any(name not in self.scope.dimensions for name in inputs.values()):
+            return
+        self.scope.relation_step(f"derived/{item.symbol}", item.symbol, item.meaning, "derived", item.relation, inputs,
+                                 "calculation file", place=item.place)
+
+    def _mark_unused(self) -> None:
+        for symbol in self.calculation.givens:
+            if symbol not in self.scope.used_in:
+                self.scope.used_in[symbol] = []
+
+    def _assumptions_of_engineer(self) -> None:
+        for item in self.calculation.assumptions:
+            if not item.is_verified:
+                self.scope.open(f"assumption {item.id}", "assumption", f"Assumption {item.id} is not verified.")
+
+    # -- order of terms -----------------------------------------------------------------------------
+
+    def _order_holds(self, terms: tuple[Term, ...]) -> bool:
+        before = len(list(self.collector))
+        ends = ("film", "parallel", "radiation")
+        if len(terms) < 2 or terms[0].kind not in ends:
+            self.collector.add("film-missing", terms[0].place, "no film stands on the inside",
+                               found=terms[0].kind or terms[0].name, expected="the first term of kind film")
+        if len(terms) < 2 or terms[-1].kind not in ends:
+            self.collector.add("film-missing", terms[-1].place, "no film stands on the outside",
+                               found=terms[-1].kind or terms[-1].name, expected="the last term of kind film")
+        walls = [index for index, term in enumerate(terms) if term.kind == "wall"]
+        for index, term in enumerate(terms[1:-1], 1):
+            if term.kind in ends:
+                self.collector.add("term-order", term.place, f"`{term.name}` stands between other terms",
+                                   found=term.kind, expected="films and radiation first or last only")
+            elif term.kind == "fouling" and walls and walls[0] < index < walls[-1]:
+                self.collector.add("term-order", term.place, f"`{term.name}` lies between two walls",
+                                   expected="fouling between a film and the wall next to it")
+            elif term.kind == "contact" and not (walls and walls[0] < index < walls[-1]):
+                self.collector.add("term-order", term.place, f"`{term.name}` does not lie between two walls",
+                                   expected="a contact between two walls")
+        return len(list(self.collector)) == before
+
+    # -- elements -----------------------------------------------------------------------------------
+
+    def _elements(self, terms: tuple[Term, ...], shape: Shape) -> tuple[Element, ...] | None:
+        included = {name for term in terms for name in term.includes}
+        known = {term.name for term in terms}
+        for term in terms:
+            for name in term.includes:
+                if name not in known:
+                    self.collector.add("term-unknown", term.place_of("includes"), f"there is no term `{shown(name)}`",
+                                       found=shown(name), expected=", ".join(sorted(known)),
+                                       nearest=nearest_names(name, known))
+        elements: list[Element | None] = []
+        at = 0
+        for index, term in enumerate(terms):
+            if index in (0, len(terms) - 1):
+                elements.append(self._group(term, shape, "inside" if index == 0 else "outside"))
+                continue
+            wall = next((wall for wall in shape.walls if wall.term is term), None)
+            if wall is not None:
+                at = wall.first + 1
+            if term.name in included:
+                self.scope.assume(f"{term.name}/included", f"{term.name} is not counted: a stated coefficient includes it.",
+                                  "`includes` in the calculation file", term.name)
+                continue
+            elements.append(self._wall(wall, shape) if wall is not None else self._layer(term, shape, at))
+        if any(element is None for element in elements):
+            return None
+        return tuple(element for element in elements if element is not None)
+
+    def _surface(self, term: Term, shape: Shape, default: int) -> int | None:
+        name = term.texts.get("on", "")
+        if name:
+            return shape.surface_named(self.scope, name, term.place_of("on"))
+        self.scope.assume(f"{term.name}/on", f"{term.name} acts on the surface {shape.surfaces[default].name}.",
+                          "the surface next to it; `on` is not stated", term.name)
+        return default
+
+    def _layer(self, term: Term, shape: Shape, at: int) -> Layer | None:
+        surface = self._surface(term, shape, at)
+        if surface is None:
+            return None
+        if term.deposit is not None:
+            return self._deposit(term, shape, surface)
+        resistance = self.scope.value(term.values.get("resistance"), "area resistance", term.name, "resistance")
+        if not resistance and "coefficient" in term.values:
+            coefficient = self.scope.value(term.values["coefficient"], "film coefficient", term.name, "coefficient")
+            if coefficient:
+                resistance = self.scope.relation_step(f"{term.name}/R", "R", "area resistance", term.name,
+                                                      parse_expression("1/h"), {"h": coefficient}, "stated",
+                                                      "area resistance")
+        if not resistance:
+            if "resistance" not in term.values and "coefficient" not in term.values:
+                self.collector.add("need-missing", term.place, f"`{term.name}` has no resistance",
+                                   expected="resistance: … m^2 K/W"
+                                   + (", or deposit: {thickness: …, conductivity: …}" if term.kind == "fouling" else ""))
+            return None
+        return Layer(term.name, term.kind, surface, resistance)
+
+    def _deposit(self, term: Term, shape: Shape, surface: int) -> Layer | None:
+        assert term.deposit is not None
+        thickness = self.scope.value(term.deposit.thickness, "thickness", term.name, "thickness")
+        conductivity = self.scope.value(term.deposit.conductivity, "wall conductivity", term.name, "conductivity")
+        if not thickness or not conductivity:
+            return None
+        inputs = {"t": thickness, "k": conductivity}
+        if shape.name != "tube":
+            text = "t/k"
+        elif surface == 0:
+            text, inputs["d_i"] = "d_i*ln(d_i/(d_i - 2*t))/(2*k)", shape.surfaces[0].diameter
+        else:
+            text, inputs["d_o"] = "d_o*ln((d_o + 2*t)/d_o)/(2*k)", shape.surfaces[surface].diameter
+        resistance = self.scope.relation_step(f"{term.name}/R", "R_f", "area resistance of the deposit", term.name,
+                                              parse_expression(text), inputs, "deposit", "area resistance")
+        return Layer(term.name, term.kind, surface, resistance)
+
+    # -- walls --------------------------------------------------------------------------------------
+
+    def _wall(self, wall: Wall, shape: Shape) -> Layer | None:
+        term, scope = wall.term, self.scope
+        stated = scope.value(term.values.get("resistance"), "area resistance", term.name, "resistance")
+        if stated:
+            surface = self._surface(term, shape, wall.first + 1)
+            return Layer(term.name, "wall", surface, stated) if surface is not None else None
+        first, second = f"{term.name}/T_1", f"{term.name}/T_2"
+        conductivity, table = self._conductivity(term, first, second)
+        if not conductivity:
+            return None
+        program = self.library.program(WALL_CARDS[shape.name])
+        figures = {
+            "inside diameter": shape.surfaces[wall.first].diameter,
+            "outside diameter": shape.surfaces[wall.first + 1].diameter,
+            "thickness": wall.thickness,
+            "wall conductivity": conductivity,
+        }
+        film = FilmScope(scope, self.library, term, term.name, figures)
+        names = film.bind_needs(program)
+        if names is None:
+            return None
+        film.lay_out(program, names)
+        scope.cards |= {f"method {card.id}": card.digest_text for card in program.cards}
+        resistance = names[program.result]
+        steps = film.ancestors([resistance])
+        own = tuple(step for step in steps if step.owner == term.name)
+        checks = film.checks(program, names) + (self._material_checks(term, table, first, second) if table else ())
+        if table is None:
+            return Layer(term.name, "wall", wall.first + 1, resistance, checks=checks)
+        return Layer(term.name, "wall", wall.first + 1, resistance, own, first, second, table.id, checks)
+
+    def _conductivity(self, term: Term, first: str, second: str) -> tuple[str, ConductivityTable | None]:
+        """The id of a wall's conductivity, and its table where it follows the wall's temperatures."""
+        if "conductivity" in term.values:
+            return self.scope.value(term.values["conductivity"], "wall conductivity", term.name, "conductivity"), None
+        name = term.texts.get("material", "")
+        if not name:
+            self.collector.add("need-missing", term.place, f"the wall `{term.name}` has no conductivity",
+                               expected="material: <card> or conductivity: … W/(m K)")
+            return "", None
+        try:
+            card = self.library.material(name)
+        except Faults as faults:
+            for fault in faults.faults:
+                place = term.place_of("material") if fault.code == "material-unknown" else fault.place
+                self.collector.take([replace(fault, place=place)])
+            return "", None
+        self.scope.cards[f"material {card.id}"] = card.digest_text
+        self._card_state(card.id, card.state.status, card.state.successor, term)
+        table = ConductivityTable(card)
+        self.scope.dimensions[first] = self.scope.dimensions[second] = vocabulary()["temperature"].dimension
+        column = self.scope.constant(f"{term.name}/table.k", table, vocabulary()["wall conductivity"].dimension)
+        conductivity = self.scope.relation_step(
+            f"{term.name}/{card.id}/k", "k", "mean conductivity", term.name, parse_expression("mean(table.k, T_1, T_2)"),
+            {"table.k": column, "T_1": first, "T_2": second}, card.id, "wall conductivity")
+        return conductivity, table
+
+    def _material_checks(self, term: Term, table: ConductivityTable, first: str, second: str) -> tuple[ChainCheck, ...]:
+        card = self.library.material(table.id)
+        low, high = table.limits
+        if card.outside == "hold last" and low == high:
+            return ()
+        source = card.sources[0]
+        checks = []
+        for symbol, bound in (("T_1", first), ("T_2", second)):
+            that = parse_expression(f"{low!r}*K_1 <= {symbol} <= {high!r}*K_1")
+            unit = self.scope.constant("one kelvin", 1.0, vocabulary()["temperature"].dimension)
+            limit = Limit(f"table {symbol}", that, "range", "conductivity is tabulated within these temperatures",
+                          source.cite, source.standing, card.where)
+            checks.append(ChainCheck(f"{term.name} / {card.id} / table {symbol}", term.name, card.id, limit,
+                                     {symbol: bound, "K_1": unit}))
+        return tuple(checks)
+
+    def _card_state(self, card: str, status: str, successor: str, term: Term) -> None:
+        if status == "withdrawn":
+            self.collector.add("card-withdrawn", term.place, f"the card {card} is withdrawn", expected=successor)
+
+    # -- groups -------------------------------------------------------------------------------------
+
+    def _group(self, term: Term, shape: Shape, side: str) -> Group | None:
+        surface = 0 if side == "inside" else len(shape.surfaces) - 1
+        parts = term.branches if term.kind == "parallel" else (term,)
+        scope = self.scope
+        for mark, quantity in (("T_s", "temperature"), ("q", "heat flux")):
+            scope.dimensions[f"{term.name}/{mark}"] = vocabulary()[quantity].dimension
+        branches = [self._branch(part, term.name, shape, side, surface) for part in parts]
+        films = [branch for branch in branches if branch is not None and branch.kind != "radiation"]
+        if any(branch is None for branch in branches):
+            return None
+        if not films:
+            films = [branch for branch in branches if branch is not None]
+        bulk = films[0].reference
+        for other in films[1:]:
+            if other.reference != bulk:
+                self.collector.add("term-order", term.place, "films side by side act on one fluid",
+                                   expected="one stream or temperature for the films of a parallel term")
+        return Group(term.name, side, surface, bulk, tuple(branch for branch in branches if branch is not None))
+
+    def _branch(self, term: Term, group: str, shape: Shape, side: str, surface: int) -> Branch | None:
+        if term.kind == "radiation":
+            return self._radiation(term, group, shape)
+        if "coefficient" in term.values or "resistance" in term.values:
+            return self._stated_film(term, shape, surface)
+        return self._film(term, group, shape, side)
+
+    def _stream_of(self, term: Term) -> StreamState | None:
+        name = term.texts.get("stream", "")
+        if name in self.streams:
+            return self.streams[name]
+        if name and name not in self.calculation.streams:
+            self.collector.add("stream-unknown", term.place_of("stream"), f"there is no stream `{shown(name)}`",
+                               found=shown(name), expected=", ".join(self.calculation.streams) or "a stream",
+                               nearest=nearest_names(name, self.calculation.streams))
+        return None
+
+    def _film(self, term: Term, group: str, shape: Shape, side: str) -> Branch | None:
+        for key in ("stream", "situation"):
+            if key not in term.texts:
+                self.collector.add("key-missing", term.place, f"the film `{term.name}` lacks `{key}`",
+                                   expected="stream and situation, or a stated coefficient")
+        stream = self._stream_of(term)
+        name = term.texts.get("situation", "")
+        if not name:
+            return None
+        if name not in self.library.names("situations"):
+            self.collector.add("situation-unknown", term.place_of("situation"), f"there is no situation `{shown(name)}`",
+                               found=shown(name), expected=", ".join(self.library.names("situations")),
+                               nearest=nearest_names(name, self.library.names("situations")))
+            return None
+        situation = self.library.situation(name)
+        if shape.name not in situation.shapes or side not in situation.surfaces:
+            self.collector.add("situation-not-here", term.place_of("situation"),
+                               f"`{name}` does not fit the {side} of a {shape.name}",
+                               found=f"{side} of a {shape.name}",
+                               expected=f"{' or '.join(situation.surfaces)} of a {' or '.join(situation.shapes)}")
+            return None
+        method = term.texts.get("method", "")
+        if method and method not in self.library.names("methods"):
+            self.collector.add("method-unknown", term.place_of("method"), f"there is no method `{shown(method)}`",
+                               found=shown(method), expected=", ".join(situation.methods),
+                               nearest=nearest_names(method, (*situation.methods, *self.library.names("methods"))))
+            return None
+        if stream is None:
+            return None
+        self.scope.cards[f"situation {situation.id}"] = situation.digest_text
+        film = FilmScope(self.scope, self.library, term, group, shape.dimensions, stream, situation)
+        self._check_with(term, situation, film)
+        branch = film.branch()
+        for candidate in branch.candidates if branch is not None else ():
+            self._card_state(candidate.method.id, candidate.method.state.status, candidate.method.state.successor, term)
+        return branch
+
+    def _check_with(self, term: Term, situation, film: FilmScope) -> None:  # type: ignore[no-untyped-def]
+        """Every entry of `with:` must be asked for by the situation or one of its methods."""
+        asked = {need.symbol for need in situation.needs} | {need.quantity.name for need in situation.needs}
+        methods = [term.texts["method"]] if "method" in term.texts else situation.methods
+        for method in methods:
+            for item in self.library.program(method).needs:
+                asked |= {item.need.symbol, item.need.quantity.name}
+        for key, value in term.with_values.items():
+            if key not in asked:
+                self.collector.add("key-unknown", value.place, f"`{shown(key)}` is asked for by no card of `{term.name}`",
+                                   found=shown(key), expected=", ".join(sorted(need.symbol for need in situation.needs)),
+                                   nearest=nearest_names(key, sorted(asked)))
+
+    def _stated_film(self, term: Term, shape: Shape, surface: int) -> Branch | None:
+        scope = self.scope
+        stated_on = self._surface(term, shape, surface)
+        if stated_on is None:
+            return None
+        coefficient = scope.value(term.values.get("coefficient"), "film coefficient", term.name, "coefficient")
+        if not coefficient and "resistance" in term.values:
+            resistance = scope.value(term.values["resistance"], "area resistance", term.name, "resistance")
+            if resistance:
+                coefficient = scope.relation_step(f"{term.name}/stated/h", "h", "film coefficient", term.name,
+                                                  parse_expression("1/R"), {"R": resistance}, "stated", "film coefficient")
+        if not coefficient:
+            return None
+        if term.scales_with is not None:
+            coefficient = self._scaled(term, coefficient)
+        if stated_on != surface:
+            coefficient = scope.relation_step(
+                f"{term.name}/referred/h", "h", f"film coefficient on {shape.surfaces[surface].name}", term.name,
+                parse_expression("h_stated*A_stated/A"),
+                {"h_stated": coefficient, "A_stated": shape.surfaces[stated_on].area, "A": shape.surfaces[surface].area},
+                "referred from the stated surface", "film coefficient")
+        bulk = scope.value(term.values.get("temperature"), "temperature", term.name, "temperature")
+        stream = self._stream_of(term)
+        if not bulk and stream is not None:
+            bulk = stream.temperature
+        checks = self._holds_for(term)
+        film = FilmScope(scope, self.library, term, term.name, shape.dimensions, stream)
+        steps = film.ancestors([coefficient])
+        candidate = Candidate(STATED, steps, coefficient, checks, "stated in the calculation file", False, ())
+        return Branch(term.name, "stated", bulk, (candidate,), is_forced=True, stream=stream.name if stream else "")
+
+    def _scaled(self, term: Term, coefficient: str) -> str:
+        assert term.scales_with is not None
+        inputs = self._bind_givens(term.scales_with, term, "scales with")
+        if inputs is None:
+            return coefficient
+        try:
+            dim = dimension(term.scales_with, {symbol: self.scope.dimensions[name] for symbol, name in inputs.items()})
+            if dim != DIMENSIONLESS:
+                self.collector.add("dimension-slip", term.place_of("scales with"), "`scales with` is a plain factor")
+        except RelationFault as error:
+            self.collector.add("dimension-slip", term.place_of("scales with"), error.message)
+            return coefficient
+        factor = self.scope.relation_step(f"{term.name}/factor", "x", "factor on the stated coefficient", term.name,
+                                          term.scales_with, inputs, "calculation file", "ratio")
+        return self.scope.relation_step(f"{term.name}/scaled/h", "h", "film coefficient", term.name,
+                                        parse_expression("h_stated*x"), {"h_stated": coefficient, "x": factor},
+                                        "stated and scaled", "film coefficient")
+
+    def _bind_givens(self, relation: Relation, term: Term, key: str) -> dict[str, str] | None:
+        inputs = {}
+        for symbol in relation.symbols:
+            name = next((f"{kind}/{symbol}" for kind in ("given", "derived")
+                         if f"{kind}/{symbol}" in self.scope.dimensions), "")
+            if not name:
+                known = [*self.calculation.givens, *self.calculation.derived]
+                self.collector.add("symbol-unknown", term.place_of(key), f"`{shown(symbol)}` is neither a given nor derived",
+                                   found=shown(symbol), expected=", ".join(known), nearest=nearest_names(symbol, known))
+                return None
+            self.scope.used_in.setdefault(symbol, []).append(f"{term.name}, {key}")
+            inputs[symbol] = name
+        return inputs
+
+    def _holds_for(self, term: Term) -> tuple[ChainCheck, ...]:
+        """The range in which a stated coefficient holds, as a check on the symbol it names."""
+        if term.holds_for is None:
+            return ()
+        low, high = term.holds_for
+        name = self._held_figure(term, low.source)
+        if not name:
+            self.collector.add("symbol-unknown", low.place, f"`{shown(low.source)}` is neither a given nor derived",
+                               found=shown(low.source), expected=", ".join((*self.calculation.givens, "flow", "temperature")),
+                               nearest=nearest_names(low.source, self.calculation.givens))
+            return ()
+        bounds = {}
+        for key, value in (("low", low), ("high", high)):
+            if value.quantity is None or value.quantity.dimension != self.scope.dimensions[name]:
+                self.collector.add("unit-dimension", value.place, "the range has another dimension than its figure",
+                                   found=value.text)
+                return ()
+            bounds[key] = self.scope.constant(f"{term.name}/holds for {key}", value.quantity.value, value.quantity.dimension)
+        limit = Limit("holds for", parse_expression("low <= x <= high"), "range",
+                      f"the stated value holds for {low.source} {low.text} to {high.text}", "calculation file", "published",
+                      term.place)
+        return (ChainCheck(f"{term.name} / stated / holds for", term.name, "stated", limit, {"x": name, **bounds}),)
+
+    def _held_figure(self, term: Term, key: str) -> str:
+        stream = self.streams.get(term.texts.get("stream", ""))
+        if stream is not None and key in ("flow", "temperature", "pressure"):
+            return getattr(stream, key)
+        name = next((f"{kind}/{key}" for kind in ("given", "derived") if f"{kind}/{key}" in self.scope.dimensions), "")
+        if name:
+            self.scope.used_in.setdefault(key, []).append(f"{term.name}, holds for")
+        return name
+
+    def _radiation(self, term: Term, group: str, shape: Shape) -> Branch | None:
+        emissivity = self.scope.value(term.values.get("emissivity"), "emissivity", term.name, "emissivity")
+        surroundings = self.scope.value(term.values.get("surroundings"), "temperature", term.name, "surroundings")
+        for key in ("emissivity", "surroundings"):
+            if key not in term.values:
+                self.collector.add("key-missing", term.place, f"the radiation `{term.name}` lacks `{key}`",
+                                   expected="emissivity and surroundings")
+        if not emissivity or not surroundings:
+            return None
+        figures = {"emissivity": emissivity, "temperature": surroundings}
+        film = FilmScope(self.scope, self.library, term, group, figures)
+        method = term.texts.get("method", "radiation-linear-small")
+        candidate = film.candidate(method, "radiation to large surroundings")
+        if candidate is None:
+            return None
+        return Branch(term.name, "radiation", surroundings, (candidate,))
+
+    # -- temperatures -------------------------------------------------------------------------------
+
+    def _check_temperatures(self, elements: tuple[Element, ...] | None) -> None:
+        """Where anything follows the surface temperature, both bulk temperatures must be known."""
+        if elements is None:
+            return
+        groups = [element for element in elements if isinstance(element, Group)]
+        moving = [element for element in elements if follows_temperature(element)]
+        for group in groups:
+            if not group.bulk and moving:
+                term = next(term for term in self.calculation.resistances if term.name == group.name)
+                self.collector.add("temperature-missing", term.place, f"`{group.name}` has no bulk temperature",
+                                   found=f"`{moving[0].name}` needs the temperature of its surface",
+                                   expected="temperature: … or stream: … on the term")
+
+
+STATED = Method(
+    id="stated", title="Stated coefficient", gives="h", closes_on="nothing", properties_at="", needs=(), constants={},
+    uses=(), tables={}, lines=(), limits=(), accuracy=None, assumes=(), family="stated", sources=(), check_points=(),
+    state=None, notes=(), house=False, where=None,  # type: ignore[arg-type]
+)
+
+
+def follows_temperature(element: Element) -> bool:
+    """Whether an element's resistance depends on its own temperatures or flux."""
+    if isinstance(element, Layer):
+        return bool(element.first_temperature)
+    if any(branch.reference != element.bulk for branch in element.branches):
+        return True
+    moving = {element.surface_temperature, element.flux}
+    return any(
+        bound in moving
+        for branch in element.branches
+        for candidate in branch.candidates
+        for step in (*candidate.steps, *branch.choice_steps)
+        for bound in step.inputs.values()
+    )
+
+
+def _steps_of(element: Element) -> tuple[ChainStep, ...]:
+    if isinstance(element, Layer):
+        return element.steps
+    return tuple(step for branch in element.branches for candidate in (*branch.candidates, *branch.alternatives)
+                 for step in (*candidate.steps, *branch.choice_steps))
+
+
+def _kind_of_dimension(dim: tuple, reading: str) -> QuantityKind:
+    """A kind for a given that nothing uses or that only derived quantities use."""
+    for kind in vocabulary().values():
+        if kind.dimension == dim and kind.reading in ("", reading) and not kind.flag:
+            return kind
+    from calcbook.chain.scope import _unnamed
+
+    return _unnamed("x", dim)
+
+
+def lay_out_circuit(scope: Scope, elements: tuple[Element, ...], shape: Shape, basis: int
+                    ) -> tuple[tuple[ChainStep, ...], dict[str, str]]:
+    """The steps from film coefficients and resistances to U on every surface, and the names of results."""
+    from calcbook.chain.circuit import Circuit
+
+    return Circuit(scope, elements, shape, basis).lay_out()
+
+
+__all__ = ["QuantityFault", "RelationOperation", "build", "follows_temperature"]

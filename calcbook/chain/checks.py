@@ -1,0 +1,157 @@
+"""Limits evaluated at a solution: figure, limit, state; and the engineer's acceptances applied."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from dataclasses import replace
+
+import numpy as np
+
+from calcbook.calcfile.calculation import Acceptance
+from calcbook.chain.outcome import CheckResult
+from calcbook.chain.solve import Solution
+from calcbook.chain.types import Chain, ChainCheck
+from calcbook.faults import Collector, nearest_names, shown
+from calcbook.formulas import Compare, Node, Number, Symbol, dimension, evaluate, number_text, write
+from calcbook.formulas.nodes import CONSTANTS
+from calcbook.quantities import DIMENSIONLESS, QuantityFault, read_any, si_unit, unit_display
+
+OPERATORS = {">=": "≥", "<=": "≤", ">": ">", "<": "<", "==": "=", "!=": "≠"}
+
+
+def evaluate_check(check: ChainCheck, solution: Solution, case: str, dimensions: Mapping[str, tuple]) -> CheckResult:
+    """One limit in one condition of a single record."""
+    values = solution.values
+    arguments = {symbol: values[bound] for symbol, bound in check.inputs.items()}
+    unknown = any(not np.all(np.isfinite(np.asarray(value, dtype=float))) for value in arguments.values()
+                  if isinstance(value, np.ndarray))
+    state = "not evaluable"
+    if not all(_counts(one.relation, one.inputs, values) for one in check.counts_when):
+        state = "not counting"
+    elif not unknown:
+        state = "within" if bool(evaluate(check.limit.that, arguments)) else "outside"
+    local = {symbol: dimensions.get(bound, DIMENSIONLESS) for symbol, bound in check.inputs.items()}
+    figure, limit, value, unit = _figure_and_limit(check.limit.that.tree, arguments, local, state == "not evaluable")
+    return CheckResult(check.id, check.owner, check.card, solution.condition, case, write(check.limit.that), figure,
+                       limit, value, unit, check.limit.level, state, check.limit.because, check.limit.source,
+                       check.limit.standing)
+
+
+def _counts(relation, inputs: Mapping[str, str], values: Mapping[str, np.ndarray]) -> bool:  # type: ignore[no-untyped-def]
+    return bool(evaluate(relation, {symbol: values[bound] for symbol, bound in inputs.items()}))
+
+
+def _figure_and_limit(tree: Node, arguments: Mapping[str, np.ndarray], dims: Mapping[str, tuple], unknown: bool
+                      ) -> tuple[str, str, float, str]:
+    """The checked figure and its limit as text, from the comparison itself."""
+    if not isinstance(tree, Compare):
+        return write(tree), "", math.nan, ""
+    operands = [tree.first, *(operand for _, operand in tree.rest)]
+    place = 1 if len(operands) == 3 else (0 if not _is_fixed(operands[0]) or len(operands) == 1 else 1)
+    checked = operands[place]
+    unit = unit_display(si_unit(dimension(checked, dims)))
+    name = write(checked)
+    if unknown:
+        return f"{name} is not known", _limit_text(tree, operands, place, arguments, dims, ()), math.nan, unit
+    numbers = [float(np.asarray(evaluate(operand, arguments)).ravel()[0]) for operand in operands]
+    others = tuple(number for index, number in enumerate(numbers) if index != place)
+    figure = f"{name} = {apart(numbers[place], others)}{_unit(unit)}"
+    return figure, _limit_text(tree, operands, place, arguments, dims, tuple(numbers)), numbers[place], unit
+
+
+def _limit_text(tree: Compare, operands: list[Node], place: int, arguments: Mapping[str, np.ndarray],
+                dims: Mapping[str, tuple], numbers: tuple[float, ...]) -> str:
+    def text(index: int) -> str:
+        operand = operands[index]
+        if isinstance(operand, Number) or not numbers:
+            return write(operand)
+        unit = unit_display(si_unit(dimension(operand, dims)))
+        return apart(numbers[index], (numbers[place],)) + _unit(unit)
+
+    if len(operands) == 3:
+        return f"{text(0)} to {text(2)}"
+    operator = OPERATORS[tree.rest[0][0]]
+    if place == 1:
+        operator = {"≥": "≤", "≤": "≥", ">": "<", "<": ">"}.get(operator, operator)
+    return f"{operator} {text(1 - place)}"
+
+
+def _unit(unit: str) -> str:
+    return "" if unit in ("1", "") else f" {unit}"
+
+
+def _is_fixed(node: Node) -> bool:
+    if isinstance(node, Symbol):
+        return node.name in CONSTANTS
+    return isinstance(node, Number)
+
+
+def apart(value: float, others: tuple[float, ...], digits: int = 5) -> str:
+    """A figure with enough digits that it differs in print from the figures it is compared with."""
+    if not math.isfinite(value):
+        return "not known"
+    for more in range(digits, 18):
+        text = number_text(value, more)
+        if all(value == other or number_text(other, more) != text for other in others):
+            return text
+    return repr(value)
+
+
+# --- acceptance by the engineer ---------------------------------------------------------------------
+
+
+def apply_acceptances(chain: Chain, results: tuple[CheckResult, ...], collector: Collector) -> tuple[CheckResult, ...]:
+    """Outside or not evaluable range checks that the file accepts, with its bound and reason.
+
+    Codes: accept-unknown for an id that matches no check, unit-dimension for a bound of another quantity.
+    """
+    known = dict.fromkeys(result.id for result in results)
+    cases = {result.case for result in results}
+    for acceptance in chain.calculation.accept:
+        if acceptance.check not in known:
+            collector.add("accept-unknown", acceptance.place, f"no check is called `{shown(acceptance.check)}`",
+                          found=shown(acceptance.check), expected="the id of a check in the record's validity table",
+                          nearest=nearest_names(acceptance.check, known))
+        if acceptance.within not in ("all", "clean", "service", *cases):
+            collector.add("accept-unknown", acceptance.place, f"`in: {shown(acceptance.within)}` is no condition or case",
+                          expected=", ".join(("all", "clean", "service", *(case for case in cases if case))))
+    return tuple(_accepted(chain, result, collector) for result in results)
+
+
+def _accepted(chain: Chain, result: CheckResult, collector: Collector) -> CheckResult:
+    for acceptance in chain.calculation.accept:
+        if acceptance.check != result.id or acceptance.within not in ("all", result.condition, result.case):
+            continue
+        bound = _bound(acceptance, result, collector)
+        if bound is None:
+            return result
+        words = f"{acceptance.because} ({acceptance.direction} {acceptance.bound.text if acceptance.bound else ''};" \
+                f" {acceptance.by}, {acceptance.date})"
+        if result.state == "within":
+            return replace(result, accepted=f"accepted though within: {words}")
+        if result.level == "stop" or result.state not in ("outside", "not evaluable"):
+            return result
+        inside = math.isnan(result.value) or (result.value >= bound if acceptance.direction == "down to"
+                                              else result.value <= bound)
+        if inside:
+            return replace(result, state="accepted", accepted=words)
+        return replace(result, accepted=f"beyond the accepted bound: {words}")
+    return result
+
+
+def _bound(acceptance: Acceptance, result: CheckResult, collector: Collector) -> float | None:
+    value = acceptance.bound
+    if value is None:
+        return None
+    try:
+        quantity = value.quantity or read_any(value.text)
+    except QuantityFault:
+        collector.add("number-unreadable", value.place, "the bound is no figure", found=shown(value.text),
+                      expected=f"a figure in {result.unit or '1'}")
+        return None
+    if unit_display(si_unit(quantity.dimension)) != result.unit:
+        collector.add("unit-dimension", value.place, "the bound has another dimension than the checked figure",
+                      found=value.text, expected=result.unit)
+        return None
+    return quantity.value

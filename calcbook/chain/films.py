@@ -1,0 +1,453 @@
+"""Films: the groups a situation forms, the methods laid out on them, and the choice between methods."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, field, replace
+
+from calcbook.calcfile.calculation import Term, Value
+from calcbook.chain.fluids import LiquidOperation
+from calcbook.chain.scope import Scope
+from calcbook.chain.types import Branch, Candidate, ChainCheck, ChainStep, ChoiceRow, StreamState
+from calcbook.faults import Collector, Faults, shown
+from calcbook.formulas import Relation, parse_expression
+from calcbook.library import Library, Program
+from calcbook.library.cards import Method, Need, Situation
+from calcbook.library.programs import ProgramStep
+from calcbook.library.reading import choice_number, vocabulary
+from calcbook.quantities import DIMENSIONLESS
+
+PROPERTY_SYMBOLS = {
+    "rho": "density",
+    "mu": "viscosity",
+    "lam": "conductivity",
+    "cp": "heat capacity",
+    "beta": "expansion coefficient",
+}
+PLACE_MARKS = {"bulk": "b", "film": "f", "surface": "s"}
+
+
+@dataclass
+class FilmScope:
+    """Everything that one film term may ask for, made into steps when it is first asked for.
+
+    ``dimensions`` gives the ids of geometric figures by vocabulary name for the surface the film acts on.
+    """
+
+    scope: Scope
+    library: Library
+    term: Term
+    group: str
+    dimensions: Mapping[str, str]
+    stream: StreamState | None = None
+    situation: Situation | None = None
+    missing: set[str] = field(default_factory=set)
+    candidates: frozenset[str] = frozenset()
+
+    # -- temperatures and properties ------------------------------------------------------------------
+
+    @property
+    def owner(self) -> str:
+        return self.term.name
+
+    @property
+    def bulk(self) -> str:
+        return self.stream.temperature if self.stream is not None else ""
+
+    @property
+    def surface(self) -> str:
+        return f"{self.group}/T_s"
+
+    def temperature(self, place: str) -> str:
+        """The id of a temperature: bulk, surface, or film (the mean of both)."""
+        if place == "bulk":
+            return self.bulk
+        if place == "surface":
+            return self.surface
+        return self.scope.relation_step(f"{self.owner}/film/T", "T_f", "film temperature", self.owner,
+                                        parse_expression("(T_s + T_b)/2"), {"T_s": self.surface, "T_b": self.bulk},
+                                        "mean of surface and bulk", "temperature")
+
+    def property(self, name: str, place: str) -> str:
+        """The id of a property of the stream at a place."""
+        assert self.stream is not None
+        stream = self.stream
+        symbol = next(symbol for symbol, known in PROPERTY_SYMBOLS.items() if known == name)
+        step = f"stream {stream.name}/{name}" if place == "bulk" else f"{self.owner}/{place}/{name}"
+        if step in self.scope.steps:
+            return step
+        inputs = stream.state_inputs(self.temperature(place))
+        if place != "bulk":
+            inputs["liquid"] = self.flag("fluid liquid")
+        shown_symbol = symbol if place == "bulk" else f"{symbol}_{PLACE_MARKS[place]}"
+        title = name if place == "bulk" else f"{name} at {place} temperature"
+        return self.scope.step(step, shown_symbol, title, self.owner, stream.operation(name, place != "bulk"), inputs,
+                               stream.fluid_name, vocabulary()[name])
+
+    # -- flow and geometry ----------------------------------------------------------------------------
+
+    def need_of_situation(self, name: str) -> str:
+        """The id of a figure that the situation needs, by its quantity name."""
+        assert self.situation is not None
+        for need in self.situation.needs:
+            if need.quantity.name == name:
+                return self.from_term(need)
+        return ""
+
+    def from_term(self, need: Need) -> str:
+        """A need from the term's `with:`, from the geometry, or its absent value."""
+        stated = self.term.with_values.get(need.symbol) or self.term.with_values.get(need.quantity.name)
+        if need.one_of:
+            return self._choice(need, stated)
+        if stated is not None:
+            return self.scope.value(stated, need.quantity.name, self.owner, f"with {need.symbol}")
+        if need.quantity.name in self.dimensions:
+            return self.dimensions[need.quantity.name]
+        if need.absent is not None:
+            name = f"{self.owner}/{need.symbol} absent"
+            self.scope.assume(f"{self.owner}/{need.symbol}", f"{need.quantity.name} {need.symbol} is taken as {need.absent}.",
+                              "nothing is stated", self.owner)
+            return self.scope.constant(name, float(need.absent), need.quantity.dimension)
+        return ""
+
+    def _choice(self, need: Need, stated: Value | None) -> str:
+        text = stated.text if stated is not None else need.absent
+        if text is None:
+            self.report_missing(need, " | ".join(need.one_of))
+            return ""
+        try:
+            number = choice_number(text, need.one_of)
+            if not _words(need) and text not in need.one_of and number not in [float(item) for item in need.one_of]:
+                raise ValueError(text)
+        except ValueError:
+            assert stated is not None
+            self.scope.collector.add("choice-unknown", stated.place, f"`{need.symbol}` cannot be `{shown(text)}`",
+                                     found=shown(text), expected=" | ".join(need.one_of))
+            return ""
+        if stated is None:
+            self.scope.assume(f"{self.owner}/{need.symbol}", f"{need.symbol} is taken as {text}.", "nothing is stated",
+                              self.owner)
+        return self.scope.constant(f"{self.owner}/with {need.symbol}", number)
+
+    def report_missing(self, need: Need, example: str) -> None:
+        """A figure that nothing gives: said once per term."""
+        if need.symbol in self.missing:
+            return
+        self.missing.add(need.symbol)
+        self.scope.collector.add(
+            "need-missing", self.term.place, f"`{self.owner}` needs {need.quantity.name} `{need.symbol}`",
+            expected=f"it in the geometry, or with: {{{need.symbol}: {example}}} on the term")
+
+    def speed(self) -> str:
+        """The id of the stream's speed at this film: as stated, or from its flow and the flow area."""
+        assert self.stream is not None and self.situation is not None
+        stream = self.stream
+        if stream.flow_kind == "speed":
+            return stream.flow
+        if not stream.flow_kind:
+            self._fault_flow("the stream has no flow", "flow: mass flow, volume flow or speed on the stream")
+            return ""
+        if self.situation.flow_area is None:
+            self._fault_flow("the situation has no flow area: the flow must be a speed", "flow: 4 m/s on the stream")
+            return ""
+        area = self.local_step("flow area", "A_c", "flow area", self.situation.flow_area, "flow area")
+        density = self.property("density", "bulk")
+        return self.scope.relation_step(f"{self.owner}/speed", "v", "speed", self.owner, parse_expression("m/(rho*A_c)"),
+                                        {"m": stream.mass_flow, "rho": density, "A_c": area},
+                                        self.situation.id, "speed")
+
+    def _fault_flow(self, message: str, expected: str) -> None:
+        if "flow" not in self.missing:
+            self.missing.add("flow")
+            self.scope.collector.add("flow-missing", self.term.place, f"`{self.owner}`: {message}", expected=expected)
+
+    def local_step(self, key: str, symbol: str, title: str, relation: Relation, kind: str) -> str:
+        """A relation of the situation card over its needs."""
+        assert self.situation is not None
+        inputs = self.bind(relation, "bulk")
+        if inputs is None:
+            return ""
+        only = relation.text.strip()
+        if only in inputs:
+            return inputs[only]
+        return self.scope.relation_step(f"{self.owner}/{key}", symbol, title, self.owner, relation, inputs,
+                                        self.situation.id, kind, self.term.place)
+
+    def length(self) -> str:
+        """The id of the characteristic length."""
+        assert self.situation is not None
+        return self.local_step("L_c", "L_c", "characteristic length", self.situation.characteristic_length,
+                               "characteristic length")
+
+    def bind(self, relation: Relation, place: str) -> dict[str, str] | None:
+        """The ids of a situation relation's symbols at a place, or None after a fault."""
+        bound = {}
+        for symbol in relation.symbols:
+            found = self.symbol(symbol, place)
+            if not found:
+                return None
+            bound[symbol] = found
+        return bound
+
+    def symbol(self, symbol: str, place: str) -> str:
+        """The id of a symbol of a situation card at a place."""
+        assert self.situation is not None
+        if symbol in PROPERTY_SYMBOLS:
+            return self.property(PROPERTY_SYMBOLS[symbol], place)
+        special = {"v": self.speed, "L_c": self.length}
+        if symbol in special:
+            return special[symbol]()
+        if symbol in ("T_b", "T_s", "T_f"):
+            return self.temperature({"T_b": "bulk", "T_s": "surface", "T_f": "film"}[symbol])
+        if symbol in ("heated", "liquid"):
+            return self.flag(f"fluid {symbol}")
+        for need in self.situation.needs:
+            if symbol in need.one_of:
+                return self.scope.constant(f"word {symbol} of {need.symbol}", float(need.one_of.index(symbol)))
+            if need.symbol == symbol:
+                found = self.from_term(need)
+                if not found and not need.one_of:
+                    self.report_missing(need, f"1 {need.quantity.unit}")
+                return found
+        for group in self.situation.groups:
+            if group.symbol == symbol:
+                return self.group_step(group.quantity.name, place)
+        self.scope.collector.add("symbol-unknown", self.situation.where, f"situation {self.situation.id}: `{symbol}`"
+                                 " is neither a need, a group nor a property")
+        return ""
+
+    def flag(self, name: str) -> str:
+        """The id of a flag: the fluid is heated, the fluid is a liquid."""
+        assert self.stream is not None
+        if name == "fluid heated":
+            return self.scope.relation_step(f"{self.owner}/heated", "heated", "fluid heated", self.owner,
+                                            parse_expression("T_s > T_b"), {"T_s": self.surface, "T_b": self.bulk},
+                                            "surface minus bulk of this fluid", "fluid heated")
+        stream = self.stream
+        operation = LiquidOperation(stream.operation("density"))
+        return self.scope.step(f"stream {stream.name}/liquid", "liquid", "fluid liquid", self.owner, operation,
+                               stream.state_inputs(stream.temperature), stream.fluid_name,
+                               vocabulary()["fluid liquid"])
+
+    def group_step(self, name: str, place: str) -> str:
+        """The id of a dimensionless group of the situation at a place."""
+        assert self.situation is not None
+        for group in self.situation.groups:
+            if group.quantity.name == name:
+                mark = "" if place == "bulk" else f"_{PLACE_MARKS[place]}"
+                inputs = self.bind(group.relation, place)
+                if inputs is None:
+                    return ""
+                title = name if place == "bulk" else f"{name} at {place} temperature"
+                return self.scope.relation_step(f"{self.owner}/{group.symbol}{mark}", f"{group.symbol}{mark}", title,
+                                                self.owner, group.relation, inputs, self.situation.id, name,
+                                                self.term.place)
+        return ""
+
+    # -- needs of methods -----------------------------------------------------------------------------
+
+    def need(self, need: Need) -> str:
+        """The id of what a method needs. Empty when the calculation does not give it."""
+        name, place = need.quantity.name, need.place or "bulk"
+        if need.one_of:
+            return self.from_term(need)
+        if need.quantity.flag:
+            return self.flag(name)
+        if name == "temperature" and need.place:
+            return self.temperature(need.place)
+        if name in PROPERTY_SYMBOLS.values() and self.stream is not None:
+            return self.property(name, place)
+        if name == "heat flux":
+            return f"{self.group}/q"
+        if self.situation is not None:
+            if name == "characteristic length":
+                return self.length()
+            if name == "speed":
+                return self.speed()
+            found = self.group_step(name, place) or self.need_of_situation(name)
+            if found:
+                return found
+        return self.from_term(need)
+
+    # -- a method laid out ----------------------------------------------------------------------------
+
+    def candidate(self, method: str, because: str) -> Candidate | None:
+        """Lay out a method on this film; None after a fault."""
+        try:
+            program = self.library.program(method)
+        except Faults as faults:
+            self.scope.collector.take(faults.faults)
+            return None
+        card = program.method
+        names = self.bind_needs(program)
+        if names is None:
+            return None
+        self.lay_out(program, names)
+        coefficient = self.coefficient(card, names[program.result])
+        if not coefficient:
+            return None
+        steps = self.ancestors([coefficient])
+        checks = self.checks(program, names)
+        steps = self.ancestors([coefficient, *(bound for check in checks for bound in check.inputs.values())])
+        return Candidate(card, steps, coefficient, checks, because, program.uses_flag("fluid heated"), program.cards)
+
+    def bind_needs(self, program: Program) -> dict[str, str] | None:
+        """Ids for a program's needs and constants. What only limits ask for may stay unknown (NaN)."""
+        names = {}
+        used = {bound for step in program.steps for bound in step.inputs.values()} | {program.result}
+        complete = True
+        for item in program.needs:
+            found = self.need(item.need)
+            if not found:
+                if item.name in used:
+                    self.report_missing(item.need, f"1 {item.need.quantity.unit}")
+                    complete = False
+                found = self.scope.constant(f"{self.owner}/{item.need.symbol} not given", float("nan"),
+                                            item.need.quantity.dimension)
+            names[item.name] = found
+        for name, value in program.constants.items():
+            names[name] = self.scope.constant(f"{self.owner}/{program.method.id}/{name}", value,
+                                              program.constant_dimensions[name])
+        return names if complete else None
+
+    def lay_out(self, program: Program, names: dict[str, str]) -> None:
+        """Add a program's steps to the chain; ``names`` grows by their ids."""
+        for step in program.steps:
+            inputs = {local: names[bound] for local, bound in step.inputs.items()}
+            name = self.step_name(program.method.id, step, inputs)
+            kind = _kind_of_symbol(step.symbol)
+            title = kind.name if kind is not None else step.symbol
+            self.scope.step(name, step.symbol, title, self.owner, step.operation, inputs, step.card, kind,
+                            self.term.place)
+            names[step.name] = name
+
+    def step_name(self, method: str, step: ProgramStep, inputs: Mapping[str, str]) -> str:
+        """`<term>/<card>/<symbol>`; where a card stands inside another on other figures, that is named too."""
+        plain = f"{self.owner}/{step.card}/{step.symbol}"
+        inside = f"{self.owner}/{step.card} in {method}/{step.symbol}"
+        use = step.path.strip(":").replace(":", " of ")
+        names = [plain, inside, f"{self.owner}/{step.card} as {use} in {method}/{step.symbol}"]
+        if step.path and step.card in self.candidates:
+            names = names[1:]
+        for name in names:
+            there = self.scope.steps.get(name)
+            if there is None or (there.operation == step.operation and dict(there.inputs) == dict(inputs)):
+                return name
+        raise AssertionError(f"no free name for {plain}")
+
+    def coefficient(self, card: Method, result: str) -> str:
+        """The id of the film coefficient that a method's result leads to."""
+        if card.gives == "h":
+            return result
+        if card.gives != "Nu" or self.situation is None:
+            self.scope.collector.add("method-not-for-film", self.term.place_of("method"),
+                                     f"`{card.id}` gives {card.gives}, no film coefficient",
+                                     expected="a method that gives Nu or h")
+            return ""
+        inputs = {"Nu": result, "lam": self.property("conductivity", card.properties_at), "L_c": self.length()}
+        if not all(inputs.values()):
+            return ""
+        return self.scope.relation_step(f"{self.owner}/{card.id}/h", "h", "film coefficient", self.owner,
+                                        parse_expression("Nu*lam/L_c"), inputs, card.id, "film coefficient")
+
+    def checks(self, program: Program, names: Mapping[str, str]) -> tuple[ChainCheck, ...]:
+        """The limits of a method and of the cards it uses, each with bound inputs."""
+        result: dict[str, ChainCheck] = {}
+        for item in program.limits:
+            inputs = {local: names[bound] for local, bound in item.inputs.items()}
+            counting = tuple(
+                type(one)(one.relation, {local: names[bound] for local, bound in one.inputs.items()})
+                for one in item.counts_when
+            )
+            name = f"{self.owner} / {item.card} / {item.limit.id}"
+            if name in result and result[name].inputs != inputs:
+                name = f"{self.owner} / {item.card} for {item.path.strip(':')} / {item.limit.id}"
+            result.setdefault(name, ChainCheck(name, self.owner, item.card, item.limit, inputs, counting))
+        return tuple(result.values())
+
+    def ancestors(self, wanted: Iterable[str]) -> tuple[ChainStep, ...]:
+        """The steps that lead to the wanted ids, in the order they were laid out."""
+        needed: set[str] = set()
+        stack = list(wanted)
+        while stack:
+            name = stack.pop()
+            if name in self.scope.steps and name not in needed:
+                needed.add(name)
+                stack.extend(self.scope.steps[name].inputs.values())
+        return tuple(step for name, step in self.scope.steps.items() if name in needed)
+
+    # -- the whole branch -----------------------------------------------------------------------------
+
+    def branch(self) -> Branch | None:
+        """The film with its method: forced by the file, or chosen by the situation's table."""
+        assert self.situation is not None
+        forced = self.term.texts.get("method", "")
+        self.candidates = frozenset((*self.situation.methods, forced))
+        branch = self.forced_branch(forced) if forced else self.chosen_branch()
+        if branch is None:
+            return None
+        alternatives, unusable = self.alternatives({candidate.method.id for candidate in branch.candidates})
+        return replace(branch, alternatives=alternatives, unusable=unusable)
+
+    def chosen_branch(self) -> Branch | None:
+        """A film whose method the choice table finds."""
+        assert self.situation is not None
+        candidates: list[Candidate] = []
+        rows: list[ChoiceRow] = []
+        for choice in self.situation.choose:
+            candidate = self.candidate(choice.use, choice.because)
+            inputs = self.bind(choice.when, self.situation.choose_at) if choice.when is not None else {}
+            if candidate is None or inputs is None:
+                return None
+            rows.append(ChoiceRow(choice.when, inputs, len(candidates), choice.because))
+            candidates.append(candidate)
+        steps = self.ancestors([bound for row in rows for bound in row.inputs.values()])
+        return Branch(self.owner, "film", self.bulk, tuple(candidates), steps, tuple(rows), self.situation,
+                      self.stream.name if self.stream else "")
+
+    def forced_branch(self, method: str) -> Branch | None:
+        """A film whose method the file names."""
+        assert self.situation is not None
+        if method not in self.situation.methods:
+            self.scope.open(f"{self.owner}/method", "check", f"The method {method} is not one of the situation"
+                            f" {self.situation.id}.")
+        candidate = self.candidate(method, "named in the calculation file")
+        if candidate is None:
+            return None
+        return Branch(self.owner, "film", self.bulk, (candidate,), (), (), self.situation,
+                      self.stream.name if self.stream else "", True)
+
+    def alternatives(self, laid_out: set[str]) -> tuple[tuple[Candidate, ...], dict[str, str]]:
+        """The other methods of the situation; one that lacks a figure is named with the reason, no fault."""
+        assert self.situation is not None
+        found, unusable = [], {}
+        for method in self.situation.methods:
+            if method in laid_out:
+                continue
+            kept = (self.scope.collector, self.scope.assumptions, self.scope.used_in, self.missing)
+            self.scope.collector, self.missing = Collector(), set()
+            self.scope.assumptions, self.scope.used_in = dict(kept[1]), {}
+            candidate = self.candidate(method, "cross-check")
+            reasons = [fault.message for fault in self.scope.collector]
+            self.scope.collector, self.scope.assumptions, self.scope.used_in, self.missing = kept
+            if candidate is not None and not reasons:
+                found.append(candidate)
+            else:
+                unusable[method] = "; ".join(reasons)
+        return tuple(found), unusable
+
+
+def _kind_of_symbol(symbol: str):  # type: ignore[no-untyped-def]
+    for kind in vocabulary().values():
+        if kind.symbol == symbol and kind.dimension == DIMENSIONLESS and not kind.flag:
+            return kind
+    return next((kind for kind in vocabulary().values() if kind.symbol == symbol and symbol in ("h", "R", "q")), None)
+
+
+def _words(need: Need) -> bool:
+    try:
+        float(need.one_of[0])
+    except ValueError:
+        return True
+    return False
+

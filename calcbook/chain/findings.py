@@ -1,0 +1,229 @@
+"""What a solution shows beyond the limits of cards: states of streams, phases at the wall, what was decided."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+
+from calcbook.chain.checks import apart
+from calcbook.chain.outcome import CheckResult
+from calcbook.chain.solve import Solution
+from calcbook.chain.types import CONDITIONS, SERVICE, Branch, Chain, Group, OpenItem, RunnerAssumption, StreamState
+from calcbook.faults import Collector
+from calcbook.formulas import number_text
+from calcbook.library.operations import run
+from calcbook.properties import FluidAtPressure, PropertyFault
+
+ICE_POINT = 273.15
+
+
+def celsius(temperature: float, digits: int = 4) -> str:
+    """A temperature as text in degrees Celsius."""
+    return f"{number_text(temperature - ICE_POINT, digits)} °C"
+
+
+# --- states of streams ------------------------------------------------------------------------------
+
+
+def stream_findings(chain: Chain, case: str, collector: Collector) -> tuple[OpenItem, ...]:
+    """Check the bulk state of every stream of a case, and that walls are not turned inside out.
+
+    Faults (a liquid that is vapour, two phases, outside the fluid's range) go to the collector with the
+    stream's place; what only needs the engineer's eye becomes an open item.
+    """
+    values = dict(chain.constants) | chain.case_inputs(case)
+    run(chain.steps, values)
+    _check_surfaces(chain, values, collector)
+    items: list[OpenItem] = []
+    for state in chain.streams.values():
+        run([step for step in _all_steps(chain) if step.id in (state.temperature, state.pressure, state.fraction)
+             and step.id not in values], values)
+        fluid = _fluid_at(state, values, collector)
+        if fluid is None:
+            continue
+        temperature = float(values[state.temperature])
+        for finding in fluid.check_state(temperature, state.phase or None):
+            where = f"case {case}: " if case else ""
+            if finding.level == "fault":
+                collector.add(finding.code, state.place, f"{where}stream {state.name}: {finding.message}")
+            elif finding.level == "open item":
+                name = f"stream {state.name}/{finding.code}" + (f"/{case}" if case else "")
+                items.append(OpenItem(name, "state", f"{where}Stream {state.name}: {finding.message}."))
+    return tuple(items)
+
+
+def _all_steps(chain: Chain):  # type: ignore[no-untyped-def]
+    yield from chain.steps
+    for element in chain.elements:
+        if isinstance(element, Group):
+            for branch in element.branches:
+                for candidate in branch.candidates:
+                    yield from candidate.steps
+
+
+def _fluid_at(state: StreamState, values: Mapping[str, object], collector: Collector) -> FluidAtPressure | None:
+    pressure = float(values[state.pressure]) if state.pressure else None  # type: ignore[arg-type]
+    fraction = float(values[state.fraction]) if state.fraction else None  # type: ignore[arg-type]
+    try:
+        return state.fluid.state(pressure, fraction, state.phase)
+    except PropertyFault as error:
+        collector.add(error.code, state.place, f"stream {state.name}: {error.message}", expected=error.expected,
+                      nearest=error.nearest)
+        return None
+
+
+def _check_surfaces(chain: Chain, values: Mapping[str, object], collector: Collector) -> None:
+    place = chain.calculation.geometry.place if chain.calculation.geometry is not None else chain.calculation.place
+    for before, after in zip(chain.surfaces, chain.surfaces[1:], strict=False):
+        if not after.diameter:
+            continue
+        inner, outer = float(values[before.diameter]), float(values[after.diameter])  # type: ignore[arg-type]
+        if not outer > inner:
+            collector.add("wall-inverted", place, f"the surface {after.name} does not lie outside {before.name}",
+                          found=f"{number_text(outer, 5)} m against {number_text(inner, 5)} m",
+                          expected="an outside diameter above the inside diameter")
+        elif not inner > 0.0:
+            collector.add("wall-inverted", place, "the bore is not above zero", found=f"{number_text(inner, 5)} m")
+
+
+# --- phases at the wall -----------------------------------------------------------------------------
+
+
+def wall_checks(chain: Chain, case: str, solution: Solution) -> list[CheckResult]:
+    """Against boiling, condensing and freezing at every wetted surface of a film with a fluid."""
+    results = []
+    if not chain.has_temperatures:
+        return results
+    for group in (chain.inner, chain.outer):
+        for branch in group.branches:
+            if branch.kind == "film" and branch.stream:
+                results += _film_checks(chain, case, solution, group, branch)
+    return results
+
+
+def _film_checks(chain: Chain, case: str, solution: Solution, group: Group, branch: Branch) -> list[CheckResult]:
+    state = chain.streams[branch.stream]
+    pressure = solution.number(state.pressure) if state.pressure else None
+    fraction = solution.number(state.fraction) if state.fraction else None
+    fluid = state.fluid.state(pressure, fraction, state.phase)
+    phase = state.phase or fluid.phase_at(solution.number(state.temperature))
+    surface = solution.number(group.surface_temperature)
+    checks = []
+
+    def add(name: str, that: str, limit: float | None, inside: bool, sign: str, because: str) -> None:
+        known = limit is not None and math.isfinite(limit)
+        state_word = "not evaluable" if not known else ("within" if inside else "outside")
+        limit_text = f"{sign} {apart(limit - ICE_POINT, (surface - ICE_POINT,), 4)} °C" if known and limit is not None \
+            else "not known without a pressure"
+        figure = f"T_s = {apart(surface - ICE_POINT, ((limit or 0.0) - ICE_POINT,), 4)} °C"
+        checks.append(CheckResult(f"{branch.name} / wall phase / {name}", branch.name, "wall phase", solution.condition,
+                                  case, that, figure, limit_text, surface, "K", "range", state_word, because,
+                                  state.fluid_name, "independent library"))
+
+    if fluid.has_vapour_pressure or pressure is None:
+        boiling = fluid.saturation_temperature()
+        if phase == "liquid":
+            add("boils", "T_s < T_sat", boiling, boiling is not None and surface < boiling, "<",
+                "the method is for a liquid without boiling at the surface")
+        elif phase == "gas" and boiling is not None:
+            add("condenses", "T_s > T_sat", boiling, surface > boiling, ">",
+                "the method is for a gas without condensing at the surface")
+    freezing = fluid.freezing_temperature()
+    if phase == "liquid" and freezing is not None:
+        add("freezes", "T_s > T_freeze", freezing, surface > freezing, ">",
+            "the method is for a liquid that does not freeze at the surface")
+    return checks
+
+
+# --- what the runner decided ------------------------------------------------------------------------
+
+
+def assumptions_of(chain: Chain, solutions: Mapping[str, Solution]) -> tuple[RunnerAssumption, ...]:
+    """The runner's decisions: those of the build, and those that only a solution shows."""
+    from calcbook.chain.analysis import chosen
+
+    found: dict[str, RunnerAssumption] = {item.id: item for item in chain.assumptions}
+
+    def say(name: str, text: str, decided_by: str, acts_on: str) -> None:
+        found.setdefault(name, RunnerAssumption(name, text, decided_by, acts_on))
+
+    for group in (chain.inner, chain.outer):
+        for branch in group.branches:
+            for condition in reversed(CONDITIONS):
+                solution = solutions[condition]
+                candidate = chosen(branch, solution)
+                if branch.situation is not None and not branch.is_forced:
+                    figures = _choice_figures(branch, solution)
+                    say(f"{branch.name}/method/{condition}", f"{condition}: method {candidate.method.id}.",
+                        f"{candidate.because}; {figures}", branch.name)
+                if candidate.needs_direction and chain.has_temperatures:
+                    text, by = _direction(group, branch, solution)
+                    say(f"{branch.name}/direction/{condition}", f"{condition}: {text}", by, branch.name)
+    for state in chain.streams.values():
+        if not state.pressure and state.fluid.text.kind == "name":
+            say(f"stream {state.name}/saturated", f"Properties of {state.name} are those of the saturated liquid.",
+                "no pressure is stated; checks against boiling at the wall cannot be evaluated", f"stream {state.name}")
+        if not state.phase:
+            solution = solutions[SERVICE]
+            pressure = solution.number(state.pressure) if state.pressure else None
+            fraction = solution.number(state.fraction) if state.fraction else None
+            at = solution.number(state.temperature) if state.temperature in solution.values else math.nan
+            if math.isfinite(at):
+                phase = state.fluid.state(pressure, fraction, "").phase_at(at)
+                say(f"stream {state.name}/phase", f"{state.name} is taken as {phase}.",
+                    f"state at {celsius(at)}" + (f" and {number_text(pressure / 1e5, 5)} bar" if pressure else ""),
+                    f"stream {state.name}")
+    say("conditions", "Clean and service are compared at the stated bulk temperatures.", "no duty is stated", "U")
+    sides = {layer.surface for layer in chain.elements if getattr(layer, "kind", "") == "fouling"}
+    if not sides:
+        say("fouling", "No fouling term is stated: clean and service are the same.", "the list of resistances", "U")
+    return tuple(found.values())
+
+
+def _choice_figures(branch: Branch, solution: Solution) -> str:
+    """The figures that the choice was made on."""
+    names = dict.fromkeys(f"{symbol}" for row in branch.choice for symbol in row.inputs
+                          if row.inputs[symbol] in solution.values and not row.inputs[symbol].startswith("word "))
+    texts = []
+    for symbol in names:
+        bound = next(row.inputs[symbol] for row in branch.choice if symbol in row.inputs)
+        value = solution.number(bound)
+        if symbol in ("heated", "liquid"):
+            texts.append(f"{symbol} {'yes' if value else 'no'}")
+        elif not bound.startswith(f"{branch.name}/with"):
+            texts.append(f"{symbol} = {number_text(value, 5)}")
+    return ", ".join(texts) or "the only method of the table"
+
+
+def _direction(group: Group, branch: Branch, solution: Solution) -> tuple[str, str]:
+    surface, bulk = solution.number(group.surface_temperature), solution.number(branch.reference)
+    figures = (f"surface {apart(surface - ICE_POINT, (bulk - ICE_POINT,), 4)} °C,"
+               f" bulk {apart(bulk - ICE_POINT, (surface - ICE_POINT,), 4)} °C of this fluid")
+    if surface == bulk:
+        return "the direction of heat flow is undetermined.", figures
+    return f"the fluid is {'heated' if surface > bulk else 'cooled'}.", figures
+
+
+def jump_items(chain: Chain, case: str, solutions: Mapping[str, Solution]) -> tuple[OpenItem, ...]:
+    """Open items for laws without a root at a joint, and for a direction that is undetermined."""
+    from calcbook.chain.analysis import chosen
+
+    items = []
+    for condition in reversed(CONDITIONS):
+        solution = solutions[condition]
+        where = f"case {case}, {condition}" if case else condition
+        for film, (lower, upper) in solution.jump_sides.items():
+            items.append(OpenItem(f"{film} / joint / {where}", "jump",
+                                  f"{film} ({where}): the law jumps at a joint and has no root there; the lower side"
+                                  f" {number_text(float(lower.ravel()[0]), 5)} W/(m²·K) is taken, the upper is"
+                                  f" {number_text(float(upper.ravel()[0]), 5)} W/(m²·K)."))
+        if not chain.has_temperatures:
+            continue
+        for group in (chain.inner, chain.outer):
+            for branch in group.branches:
+                still = solution.number(group.surface_temperature) == solution.number(group.bulk)
+                if still and chosen(branch, solution).needs_direction:
+                    items.append(OpenItem(f"{branch.name} / direction / {where}", "check",
+                                          f"{branch.name} ({where}): surface and bulk have one temperature; heated or"
+                                          " cooled is undetermined."))
+    return tuple(items)

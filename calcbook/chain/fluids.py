@@ -1,0 +1,128 @@
+"""Fluids of a calculation as operations of the chain: properties, phase, and their derivatives."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterable, Mapping
+from dataclasses import dataclass, field
+
+import numpy as np
+
+from calcbook import properties
+from calcbook.calcfile.calculation import FluidText
+from calcbook.properties import Fluid, FluidAtPressure
+
+Array = np.ndarray
+Read = Callable[[FluidAtPressure, Array], Array]
+FRACTION_STEP = 1e-4
+
+
+@dataclass(frozen=True)
+class FluidSource:
+    """A fluid that may depend on a mixture fraction: gives the property fluid for a fraction."""
+
+    text: FluidText
+    fixed: Fluid | None = None
+    _made: dict[float, Fluid] = field(default_factory=dict, compare=False, repr=False)
+    _states: dict[tuple, FluidAtPressure] = field(default_factory=dict, compare=False, repr=False)
+
+    def at_fraction(self, fraction: float | None) -> Fluid:
+        """The fluid itself, or the mixture of that fraction. Raises ``PropertyFault``."""
+        if self.fixed is not None:
+            return self.fixed
+        assert fraction is not None
+        if fraction not in self._made:
+            self._made[fraction] = properties.mixture(self.text.name, self.text.basis, fraction)
+        return self._made[fraction]
+
+    def state(self, pressure: float | None, fraction: float | None, phase: str) -> FluidAtPressure:
+        """The fluid at a pressure (None: saturated), in a stated phase if there is one."""
+        key = (pressure, fraction, phase)
+        if key not in self._states:
+            self._states[key] = self.at_fraction(fraction).at(pressure, phase or None)
+        return self._states[key]
+
+
+@dataclass(frozen=True)
+class PropertyOperation:
+    """One property of a fluid at a temperature, and at a pressure and fraction where the file gives them.
+
+    Away from the bulk the fluid keeps its bulk phase (``keeps_phase``): a liquid that would boil at the
+    surface answers as saturated liquid there, and the wall check says so.
+    """
+
+    source: FluidSource
+    property: str
+    phase: str
+    has_pressure: bool
+    has_fraction: bool
+    keeps_phase: bool = False
+
+    @property
+    def symbols(self) -> tuple[str, ...]:
+        flags = (("p", self.has_pressure), ("w", self.has_fraction), ("liquid", self.keeps_phase))
+        return ("T", *(name for name, there in flags if there))
+
+    def value(self, arguments: Mapping[str, Array]) -> Array:
+        return self.by_state(arguments, lambda state, at: state.value(self.property, at, outside="nan"))
+
+    def slopes(self, arguments: Mapping[str, Array], value: Array, wanted: Iterable[str]) -> dict[str, Array]:
+        return {symbol: self._slope(symbol, arguments) for symbol in wanted}
+
+    def _slope(self, symbol: str, arguments: Mapping[str, Array]) -> Array:
+        if symbol == "T":
+            return self.by_state(arguments, lambda state, at: state.slope(self.property, at, outside="nan"))
+        if symbol == "p":
+            return self.by_state(arguments, lambda state, at: state.pressure_slope(self.property, at, outside="nan"))
+        if symbol == "w":
+            low = self.value({**arguments, "w": arguments["w"] - FRACTION_STEP})
+            high = self.value({**arguments, "w": arguments["w"] + FRACTION_STEP})
+            return (high - low) / (2.0 * FRACTION_STEP)
+        return np.zeros(np.shape(arguments["T"]))
+
+    def by_state(self, arguments: Mapping[str, Array], read: Read) -> Array:
+        """Read the samples group by group, each group at one pressure, fraction and phase."""
+        temperature = np.asarray(arguments["T"], dtype=float)
+        varying = [np.asarray(arguments[name], dtype=float) for name in self.symbols[1:]]
+        if all(item.ndim == 0 for item in varying):
+            return self._read([float(item) for item in varying], temperature, read)
+        shape = np.broadcast_shapes(temperature.shape, *(item.shape for item in varying))
+        flat = np.ascontiguousarray(np.broadcast_to(temperature, shape)).ravel()
+        columns = np.stack([np.broadcast_to(item, shape).ravel() for item in varying])
+        states, group = np.unique(columns, axis=1, return_inverse=True)
+        result = np.empty(flat.shape)
+        for index in range(states.shape[1]):
+            chosen = group == index
+            result[chosen] = self._read([float(item) for item in states[:, index]], flat[chosen], read)
+        return result.reshape(shape)
+
+    def _read(self, figures: list[float], temperature: Array, read: Read) -> Array:
+        named = dict(zip(self.symbols[1:], figures, strict=True))
+        phase = self.phase
+        if self.keeps_phase and not phase:
+            phase = "liquid" if named["liquid"] else "gas"
+        fraction = named.get("w")
+        return read(self.source.state(named.get("p"), named.get("w"), phase), temperature)
+
+
+@dataclass(frozen=True)
+class LiquidOperation:
+    """Whether a stream is a liquid at its bulk state: stated by the engineer, or found by the fluid."""
+
+    operation: PropertyOperation
+
+    @property
+    def symbols(self) -> tuple[str, ...]:
+        return self.operation.symbols
+
+    def value(self, arguments: Mapping[str, Array]) -> Array:
+        if self.operation.phase:
+            return np.asarray(self.operation.phase == "liquid")
+        return self.operation.by_state(arguments, _is_liquid).astype(bool)
+
+    def slopes(self, arguments: Mapping[str, Array], value: Array, wanted: Iterable[str]) -> dict[str, Array]:
+        return {symbol: np.zeros(np.shape(value)) for symbol in wanted}
+
+
+def _is_liquid(state: FluidAtPressure, temperature: Array) -> Array:
+    found = [state.phase_at(float(item)) == "liquid" for item in temperature.ravel()]
+    return np.asarray(found, dtype=float).reshape(temperature.shape)

@@ -1,0 +1,209 @@
+"""What a solved calculation holds, case by case: figures, checks, criteria, open items. Frozen, nothing computes."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+
+from calcbook.chain.solve import Solution
+from calcbook.chain.types import Chain, ChainStep, Input, OpenItem, RunnerAssumption
+from calcbook.quantities import QuantityKind
+
+
+@dataclass(frozen=True, slots=True)
+class CheckResult:
+    """One limit evaluated in one condition of one case.
+
+    ``state``: within, outside, accepted, not evaluable, or not counting (the part it limits does not
+    matter here). ``figure`` and ``limit`` are printed texts; ``value`` is the checked figure in SI.
+    """
+
+    id: str
+    owner: str
+    card: str
+    condition: str
+    case: str
+    that: str
+    figure: str
+    limit: str
+    value: float
+    unit: str
+    level: str
+    state: str
+    because: str
+    source: str
+    standing: str
+    accepted: str = ""
+
+
+@dataclass(frozen=True, slots=True)
+class CriterionResult:
+    """An acceptance criterion: met or not met, with its margin (value less limit, in the direction that is good)."""
+
+    id: str
+    case: str
+    that: str
+    value: float
+    limit: float
+    margin: float
+    met: bool
+    kind: QuantityKind
+    source: str
+
+
+@dataclass(frozen=True, slots=True)
+class Result:
+    """A named result; ``condition`` is clean, service or empty."""
+
+    name: str
+    value: float
+    kind: QuantityKind
+    title: str
+
+
+@dataclass(frozen=True, slots=True)
+class TermRow:
+    """One term in one condition: resistances on its own and on the basis area, share, temperatures on both sides.
+
+    Temperatures and ``flow_share`` are NaN where they are not known. ``methods`` names the method of each film.
+    """
+
+    name: str
+    kind: str
+    surface: str
+    own_resistance: float
+    resistance: float
+    share: float
+    coefficient: float
+    inner_temperature: float
+    outer_temperature: float
+    methods: str
+    branches: tuple[BranchRow, ...] = ()
+
+
+@dataclass(frozen=True, slots=True)
+class BranchRow:
+    """One of several ways for heat side by side: its coefficient, its temperature, its heat flow in W."""
+
+    name: str
+    kind: str
+    coefficient: float
+    reference_temperature: float
+    heat_flow: float
+
+
+@dataclass(frozen=True, slots=True)
+class StepRow:
+    """One row of the chain: the step with its values clean and service (NaN where a condition has none)."""
+
+    step: ChainStep
+    clean: float | bool
+    service: float | bool
+
+
+@dataclass(frozen=True, slots=True)
+class TermChain:
+    """The rows of one term, with what was decided for it."""
+
+    name: str
+    title: str
+    rows: tuple[StepRow, ...]
+    notes: tuple[str, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class PropertyRow:
+    """Properties of a stream at one place: values by property name (NaN where not used)."""
+
+    stream: str
+    place: str
+    condition: str
+    temperature: float
+    pressure: float
+    phase: str
+    values: Mapping[str, float]
+    provider: str
+
+
+@dataclass(frozen=True, slots=True)
+class CrossRow:
+    """Another method of the situation on the same film: what it gives, or why it was left out."""
+
+    term: str
+    method: str
+    title: str
+    family: str
+    same_family: bool
+    coefficient: float
+    overall: float
+    difference: float
+    left_out: str = ""
+
+
+@dataclass(frozen=True, slots=True)
+class ClosureRow:
+    """One way to state the balance, with its relative residual."""
+
+    what: str
+    condition: str
+    value: float
+    against: float
+    residual: float
+    unit: str
+
+
+@dataclass(frozen=True, slots=True)
+class SensitivityRow:
+    """What one per cent of a given (one kelvin of a temperature) moves U in service by, W/(m² K)."""
+
+    input: Input
+    step: str
+    change: float
+    relative: float
+
+
+@dataclass(frozen=True)
+class CaseOutcome:
+    """Everything about one case; the empty name is the base case."""
+
+    name: str
+    inputs: Mapping[str, float]
+    solutions: Mapping[str, Solution]
+    results: Mapping[str, Result]
+    terms: Mapping[str, tuple[TermRow, ...]]
+    chains: tuple[TermChain, ...]
+    circuit: tuple[StepRow, ...]
+    properties: tuple[PropertyRow, ...]
+    checks: tuple[CheckResult, ...]
+    criteria: tuple[CriterionResult, ...]
+    assumptions: tuple[RunnerAssumption, ...]
+    open_items: tuple[OpenItem, ...]
+    closure: tuple[ClosureRow, ...]
+    controlling: str
+    controlling_share: float
+
+
+@dataclass(frozen=True)
+class Solved:
+    """A solved calculation: the base case first, then the named cases."""
+
+    chain: Chain
+    cases: tuple[CaseOutcome, ...]
+    cross: tuple[CrossRow, ...]
+    sensitivity: tuple[SensitivityRow, ...]
+    cards: Mapping[str, str]
+    governing: str
+    warnings: tuple[str, ...] = field(default=())
+
+    @property
+    def base(self) -> CaseOutcome:
+        return self.cases[0]
+
+    @property
+    def open_items(self) -> tuple[OpenItem, ...]:
+        """Open items of every case, each id once."""
+        found: dict[str, OpenItem] = {}
+        for case in self.cases:
+            for item in case.open_items:
+                found.setdefault(item.id, item)
+        return tuple(found.values())

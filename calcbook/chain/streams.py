@@ -1,0 +1,178 @@
+"""Streams: their fluid, state and flow, made into figures of the chain."""
+
+from __future__ import annotations
+
+from calcbook import properties
+from calcbook.calcfile.calculation import FluidText, Stream, Value
+from calcbook.chain.fluids import FluidSource, PropertyOperation
+from calcbook.chain.scope import Scope
+from calcbook.chain.types import StreamState
+from calcbook.formulas import parse_expression
+from calcbook.library import vocabulary
+from calcbook.properties import PropertyFault
+from calcbook.quantities import QuantityFault, as_kind
+
+FLOW_KINDS = ("mass flow", "volume flow", "speed")
+
+
+def lay_out_stream(scope: Scope, stream: Stream) -> StreamState | None:
+    """The state and flow of a stream as ids; None when its fluid or temperature cannot be read."""
+    owner = f"stream {stream.name}"
+    fluid = _fluid(scope, stream.fluid) if stream.fluid is not None else None
+    temperature = scope.value(stream.temperature, "temperature", owner, "temperature")
+    pressure = scope.value(stream.pressure, "pressure", owner, "pressure")
+    if fluid is None or not temperature:
+        return None
+    fraction = ""
+    if fluid.text.fraction is not None:
+        fraction = scope.value(fluid.text.fraction, "mass fraction", owner, fluid.text.basis)
+    flow_kind = _flow_kind(scope, stream.flow)
+    flow = scope.value(stream.flow, flow_kind, owner, "flow") if flow_kind else ""
+    state = StreamState(stream.name, fluid, _provider(scope, fluid, stream), stream.phase, temperature, pressure,
+                        fraction, flow, flow_kind if flow else "", "", stream.place)
+    mass_flow = _mass_flow(scope, stream, state) if flow else ""
+    return StreamState(state.name, state.fluid, state.fluid_name, state.phase, temperature, pressure, fraction, flow,
+                       state.flow_kind, mass_flow, stream.place)
+
+
+def _provider(scope: Scope, fluid: FluidSource, stream: Stream) -> str:
+    fraction = None
+    if fluid.text.fraction is not None:
+        fraction = _si_of(scope, fluid.text.fraction)
+        if fraction is None:
+            return fluid.text.name
+    try:
+        return fluid.at_fraction(fraction).provider
+    except PropertyFault as error:
+        scope.collector.add(error.code, fluid.text.place, error.message, expected=error.expected, nearest=error.nearest)
+        return fluid.text.name
+
+
+def _si_of(scope: Scope, value: Value) -> float | None:
+    if value.symbol:
+        given = scope.calculation.givens.get(value.symbol)
+        return given.value.quantity.value if given is not None and given.value.quantity is not None else None
+    return value.quantity.value if value.quantity is not None else None
+
+
+def _fluid(scope: Scope, text: FluidText) -> FluidSource | None:
+    """The property fluid behind a fluid of the file. Faults: what the properties room raises."""
+    try:
+        if text.kind == "name":
+            return FluidSource(text, properties.pure(text.name))
+        if text.kind == "mixture":
+            return FluidSource(text)
+        _check_fluid_source(scope, text)
+        if text.kind == "constants":
+            return FluidSource(text, properties.constant(_constants(scope, text), name=text.name))
+        return FluidSource(text, _tabulated(scope, text))
+    except PropertyFault as error:
+        scope.collector.add(error.code, text.place, error.message, expected=error.expected, nearest=error.nearest)
+        return None
+
+
+def _check_fluid_source(scope: Scope, text: FluidText) -> None:
+    from calcbook.chain.scope import EMPTY_SOURCES
+
+    if text.source.strip(" .").casefold() in EMPTY_SOURCES:
+        scope.open(f"fluid {text.name}/source", "source", f"The properties of {text.name} have no source.")
+
+
+def _figures(scope: Scope, values: tuple[Value, ...], kind_name: str) -> list[float]:
+    kind = vocabulary()[kind_name]
+    figures = []
+    for value in values:
+        if value.quantity is None:
+            scope.collector.add("unit-missing", value.place, f"a {kind.name} is wanted here", found=value.text,
+                                expected=f"a number with its unit, such as 1 {kind.unit}")
+            continue
+        try:
+            figures.append(as_kind(value.quantity, kind).value)
+        except QuantityFault as error:
+            place = value.place.part(error.column - 1, error.end_column - error.column)
+            scope.collector.add(error.code, place, error.message, found=error.found, expected=error.expected,
+                                nearest=error.nearest)
+    return figures
+
+
+def _constants(scope: Scope, text: FluidText) -> dict[str, float]:
+    constants = {}
+    for name, values in text.columns.items():
+        figures = _figures(scope, values, "temperature" if name == "T" else name)
+        if figures and name != "T":
+            constants[name] = figures[0]
+    return constants
+
+
+def _tabulated(scope: Scope, text: FluidText) -> properties.Fluid:
+    temperatures = _figures(scope, text.columns.get("T", ()), "temperature")
+    columns = {}
+    for name, values in text.columns.items():
+        if name == "T":
+            continue
+        figures = _figures(scope, values, name)
+        if len(figures) == 1 and not temperatures:
+            columns[name] = ([273.15, 673.15], [figures[0], figures[0]])
+        elif len(figures) == len(temperatures):
+            columns[name] = (temperatures, figures)
+    if not text.astm:
+        return properties.tabulated(columns, name=text.name)
+    points = [(_figures(scope, (one,), "temperature"), _figures(scope, (two,), "kinematic viscosity"))
+              for one, two in text.astm]
+    if not all(one and two for one, two in points):
+        raise PropertyFault("astm-points", "the two points of the D341 viscosity cannot be read",
+                            expected="[[40 degC, 46 mm^2/s], [100 degC, 6.8 mm^2/s]]")
+    columns["viscosity"] = ([one[0] for one, _ in points], [two[0] for _, two in points])
+    return properties.tabulated(columns, viscosity_law="astm d341", name=text.name)
+
+
+def _flow_kind(scope: Scope, flow: Value | None) -> str:
+    """Mass flow, volume flow or speed, told apart by the unit; a fault when it is none of them."""
+    if flow is None:
+        return ""
+    if flow.symbol:
+        given = scope.calculation.givens.get(flow.symbol)
+        dim = given.value.quantity.dimension if given is not None and given.value.quantity else scope.dimensions.get(
+            f"derived/{flow.symbol}")
+        if dim is None:
+            scope.value(flow, "mass flow", "stream", "flow")
+            return ""
+    else:
+        dim = flow.quantity.dimension if flow.quantity is not None else None
+    for name in FLOW_KINDS:
+        if vocabulary()[name].dimension == dim:
+            return name
+    scope.collector.add("unit-dimension", flow.place, "this is no flow", found=flow.text,
+                        expected="a mass flow (kg/s), a volume flow (m^3/h) or a speed (m/s)")
+    return ""
+
+
+def _mass_flow(scope: Scope, stream: Stream, state: StreamState) -> str:
+    """The id of the mass flow, from a volume flow at its stated state or at the bulk state."""
+    owner = f"stream {stream.name}"
+    if state.flow_kind == "mass flow":
+        return state.flow
+    if state.flow_kind == "speed":
+        return ""
+    assert stream.flow is not None
+    operation = state.operation("density")
+    inputs = state.state_inputs(state.temperature)
+    where = "the bulk state"
+    if stream.flow.stated_at:
+        inputs = {
+            "T": scope.value(stream.flow.stated_at.get("temperature"), "temperature", owner, "flow temperature"),
+            "p": scope.value(stream.flow.stated_at.get("pressure"), "pressure", owner, "flow pressure"),
+        }
+        if state.fraction:
+            inputs["w"] = state.fraction
+        if not all(inputs.values()):
+            return ""
+        operation = PropertyOperation(state.fluid, "density", state.phase, True, bool(state.fraction))
+        where = "its stated state"
+    else:
+        scope.assume(f"{owner}/flow", f"The volume flow of {stream.name} is taken at its bulk state.",
+                     "no other state is stated", owner)
+    density = scope.step(f"{owner}/density of flow", "rho_V", f"density at {where}", owner, operation, inputs,
+                         state.fluid_name, vocabulary()["density"])
+    return scope.relation_step(f"{owner}/mass flow", "m", "mass flow", owner, parse_expression("V*rho_V"),
+                               {"V": state.flow, "rho_V": density}, "volume flow and density", "mass flow")

@@ -1,0 +1,293 @@
+"""What a calculation means: ordered steps with everything resolved. Nothing here looks at YAML."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+
+import numpy as np
+
+from calcbook.calcfile import Calculation
+from calcbook.chain.fluids import FluidSource, PropertyOperation
+from calcbook.faults import Place
+from calcbook.formulas import Relation
+from calcbook.library import Library
+from calcbook.library.cards import Limit, Method, Situation
+from calcbook.library.operations import Operation
+from calcbook.library.programs import Counting
+from calcbook.quantities import QuantityKind
+
+Array = np.ndarray
+CLEAN, SERVICE = "clean", "service"
+CONDITIONS = (CLEAN, SERVICE)
+
+
+@dataclass(frozen=True, slots=True)
+class Input:
+    """One figure that a calculation starts from: a given, or a literal in the file."""
+
+    id: str
+    symbol: str
+    title: str
+    kind: QuantityKind
+    value: float
+    text: str
+    source: str
+    place: Place
+    is_given: bool
+
+
+@dataclass(frozen=True, slots=True)
+class ChainStep:
+    """One row of the chain: quantity, operation with bound inputs, and where it comes from.
+
+    ``owner`` is the term, stream or `circuit` that the row belongs to; ``basis`` names the card,
+    property provider or rule that it rests on.
+    """
+
+    id: str
+    symbol: str
+    title: str
+    kind: QuantityKind | None
+    owner: str
+    operation: Operation
+    inputs: Mapping[str, str]
+    basis: str
+
+    @property
+    def name(self) -> str:
+        return self.id
+
+
+@dataclass(frozen=True, slots=True)
+class Surface:
+    """A surface of the wall, from the inside to the outside. ``diameter`` is empty for a plane."""
+
+    name: str
+    area: str
+    diameter: str
+
+
+@dataclass(frozen=True, slots=True)
+class ChainCheck:
+    """One limit to be evaluated: its id, the relation with bound inputs, and where it comes from."""
+
+    id: str
+    owner: str
+    card: str
+    limit: Limit
+    inputs: Mapping[str, str]
+    counts_when: tuple[Counting, ...] = ()
+
+
+@dataclass(frozen=True, slots=True)
+class Candidate:
+    """One method of a film, laid out: its steps in order, the film coefficient, and its checks."""
+
+    method: Method
+    steps: tuple[ChainStep, ...]
+    coefficient: str
+    checks: tuple[ChainCheck, ...]
+    because: str
+    needs_direction: bool
+    cards: tuple[Method, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class ChoiceRow:
+    """One row of a choice table, bound; the last has no condition."""
+
+    relation: Relation | None
+    inputs: Mapping[str, str]
+    candidate: int
+    because: str
+
+
+@dataclass(frozen=True, slots=True)
+class Branch:
+    """One way for heat between a surface and a temperature: a film, a stated coefficient, radiation.
+
+    ``reference`` is the id of that temperature. A film holds its candidates and the choice between
+    them; ``choice_steps`` are the figures that the choice is made on. ``alternatives`` are the other methods
+    of the situation for the cross-check; ``unusable`` are those that lack a figure, with the reason.
+    """
+
+    name: str
+    kind: str
+    reference: str
+    candidates: tuple[Candidate, ...]
+    choice_steps: tuple[ChainStep, ...] = ()
+    choice: tuple[ChoiceRow, ...] = ()
+    situation: Situation | None = None
+    stream: str = ""
+    is_forced: bool = False
+    alternatives: tuple[Candidate, ...] = ()
+    unusable: Mapping[str, str] = field(default_factory=dict)
+
+
+@dataclass(frozen=True, slots=True)
+class Group:
+    """Everything that carries heat side by side between one fluid and the surface it touches."""
+
+    name: str
+    side: str
+    surface: int
+    bulk: str
+    branches: tuple[Branch, ...]
+    stated_resistance: str = ""
+
+    @property
+    def surface_temperature(self) -> str:
+        return f"{self.name}/T_s"
+
+    @property
+    def flux(self) -> str:
+        return f"{self.name}/q"
+
+
+@dataclass(frozen=True, slots=True)
+class Layer:
+    """A resistance in series: fouling, contact, stated, or a wall between two surfaces.
+
+    ``resistance`` is the id of its area resistance on ``surface``; a wall whose conductivity follows
+    its temperatures has ``steps`` that make it from T_1 and T_2.
+    """
+
+    name: str
+    kind: str
+    surface: int
+    resistance: str
+    steps: tuple[ChainStep, ...] = ()
+    first_temperature: str = ""
+    second_temperature: str = ""
+    material: str = ""
+    checks: tuple[ChainCheck, ...] = ()
+
+
+Element = Group | Layer
+
+
+@dataclass(frozen=True, slots=True)
+class RunnerAssumption:
+    """Something the runner decided by itself: stable id, the sentence, what decided it, where it acts."""
+
+    id: str
+    text: str
+    decided_by: str
+    acts_on: str
+
+
+@dataclass(frozen=True, slots=True)
+class OpenItem:
+    """What blocks issue. Kinds: check, source, assumption, state, jump, criterion."""
+
+    id: str
+    kind: str
+    text: str
+
+
+@dataclass(frozen=True, slots=True)
+class StreamState:
+    """A stream with the ids of its state and flow, and the fluid that gives its properties.
+
+    Ids are empty where the file gives nothing. ``flow_kind`` is mass flow, volume flow, speed or empty.
+    """
+
+    name: str
+    fluid: FluidSource
+    fluid_name: str
+    phase: str
+    temperature: str
+    pressure: str
+    fraction: str
+    flow: str
+    flow_kind: str
+    mass_flow: str
+    place: Place
+
+    def operation(self, name: str, keeps_phase: bool = False) -> PropertyOperation:
+        """The operation that gives a property of this stream, at the bulk or (``keeps_phase``) elsewhere."""
+        return PropertyOperation(self.fluid, name, self.phase, bool(self.pressure), bool(self.fraction), keeps_phase)
+
+    def state_inputs(self, temperature: str) -> dict[str, str]:
+        """The inputs of a property operation at a temperature."""
+        inputs = {"T": temperature}
+        if self.pressure:
+            inputs["p"] = self.pressure
+        if self.fraction:
+            inputs["w"] = self.fraction
+        return inputs
+
+
+@dataclass(frozen=True)
+class Chain:
+    """A calculation ready to be solved."""
+
+    calculation: Calculation
+    library: Library
+    inputs: Mapping[str, Input]
+    steps: tuple[ChainStep, ...]
+    elements: tuple[Element, ...]
+    surfaces: tuple[Surface, ...]
+    basis: int
+    circuit: tuple[ChainStep, ...]
+    streams: Mapping[str, StreamState]
+    checks: tuple[ChainCheck, ...]
+    assumptions: tuple[RunnerAssumption, ...]
+    open_items: tuple[OpenItem, ...]
+    used_in: Mapping[str, tuple[str, ...]]
+    cards: Mapping[str, str]
+    results: Mapping[str, str]
+    constants: Mapping[str, object]
+    dimensions: Mapping[str, tuple]
+    per_metre: bool = False
+    restated: Mapping[str, Mapping[str, float]] = field(default_factory=dict)
+
+    @property
+    def inner(self) -> Group:
+        first = self.elements[0]
+        assert isinstance(first, Group)
+        return first
+
+    @property
+    def outer(self) -> Group:
+        last = self.elements[-1]
+        assert isinstance(last, Group)
+        return last
+
+    @property
+    def has_temperatures(self) -> bool:
+        """Whether both bulk temperatures are known, so that heat flow and surfaces can be found."""
+        return bool(self.inner.bulk and self.outer.bulk)
+
+    def case_inputs(self, case: str) -> dict[str, Array]:
+        """The figures of a case (the empty name is the base case) by input id."""
+        values = {name: np.asarray(item.value) for name, item in self.inputs.items()}
+        for symbol, item in self.case_changes(case).items():
+            values[f"given/{symbol}"] = np.asarray(item)
+        return values
+
+    def case_changes(self, case: str) -> dict[str, float]:
+        """SI values of the givens that a case restates."""
+        return dict(self.restated.get(case, {}))
+
+
+__all__ = [
+    "CLEAN",
+    "CONDITIONS",
+    "SERVICE",
+    "Branch",
+    "Candidate",
+    "Chain",
+    "ChainCheck",
+    "ChainStep",
+    "ChoiceRow",
+    "Element",
+    "Group",
+    "Input",
+    "Layer",
+    "OpenItem",
+    "RunnerAssumption",
+    "StreamState",
+    "Surface",
+]
