@@ -21,6 +21,8 @@ from calcbook.faults import Collector, Fault, Faults, Place, nearest_names, show
 
 MAXIMUM_BYTES = 2_000_000
 MAXIMUM_DEPTH = 40
+MAXIMUM_SYNTAX_FAULTS = 20
+MENDED_UP_TO = 100_000  # characters: reading on after a fault of syntax reads the whole text again
 _LOADER = getattr(yaml, "CSafeLoader", yaml.SafeLoader)
 
 
@@ -35,6 +37,17 @@ class Scalar:
     @property
     def is_empty(self) -> bool:
         return self.style == "plain" and not self.text
+
+    def part(self, column: int, end_column: int) -> Place:
+        """The place of the text's characters from ``column`` (1-based) up to ``end_column``.
+
+        Where the text does not stand in its line as it was read (escapes, several lines), the whole place.
+        """
+        for quote in (0, 1):
+            start = self.place.column - 1 + quote
+            if self.text and self.place.excerpt[start : start + len(self.text)] == self.text:
+                return self.place.part(quote + column - 1, end_column - column)
+        return self.place
 
 
 @dataclass(frozen=True, slots=True)
@@ -80,48 +93,62 @@ class Document:
     root: Node
 
 
-def read_file(path: Path, name: str | None = None) -> Document:
+def read_file(path: Path, name: str | None = None, collector: Collector | None = None) -> Document:
     """Read a YAML file into a tree.
 
-    ``name`` is how faults call the file (the path as given by default).
-    Raises ``Faults``: file-unreadable, file-too-large, file-not-utf8, file-empty, yaml-syntax,
-    key-twice, yaml-alias, and the traps of text in YAML (comment-cuts-text, colon-in-text).
+    ``name`` is how faults call the file (the path as given by default). Traps that leave a tree to speak
+    of (a key written twice, a text cut short) go to ``collector`` where one is given.
+    Raises ``Faults``: file-not-found, file-is-folder, file-unreadable, file-too-large, file-not-utf8,
+    file-not-text, file-empty, yaml-syntax, yaml-several-documents, and without a collector the traps.
     """
     called = name if name is not None else path.as_posix()
-    return read_text(_text_of(path, called), called)
+    return read_text(_text_of(path, called), called, collector)
 
 
-def read_text(text: str, name: str) -> Document:
-    """Read YAML text into a tree; raises ``Faults`` as ``read_file`` does."""
-    text = text.removeprefix("\ufeff").replace("\r\n", "\n")
+def read_text(text: str, name: str, collector: Collector | None = None) -> Document:
+    """Read YAML text into a tree; raises ``Faults`` and fills ``collector`` as ``read_file`` does."""
+    text = text.removeprefix("\ufeff").replace("\r\n", "\n").replace("\r", "\n")
     lines = text.split("\n")
-    whole = Place(name, 1, 1, 1, lines[0] if lines else "")
-    forbidden = re.search(r"[\x00-\x08\x0b\x0c\x0e-\x1f\x7f\ufffe\uffff]", text)
-    if forbidden:
-        line = text.count("\n", 0, forbidden.start())
-        column = forbidden.start() - text.rfind("\n", 0, forbidden.start())
-        place = Place(name, line + 1, column, column + 1, lines[line])
-        raise _single("file-not-text", place, "the file holds a character that no text holds",
-                      found=f"U+{ord(forbidden.group()):04X}", expected="plain UTF-8 text")
+    whole = Place(name, 1, 1, 1, lines[0])
+    _refuse_characters(text, name, lines)
     if not text.strip():
         raise _single("file-empty", whole, "the file is empty", expected="one YAML mapping")
-    try:
-        nodes = _compose(text)
-    except RecursionError:
-        raise _single("yaml-too-deep", whole, "the file is nested too deeply",
-                      expected=f"at most {MAXIMUM_DEPTH} levels") from None
-    except yaml.YAMLError as error:
-        raise Faults([_syntax_fault(error, name, lines)]) from None
+    nodes, faults = _composed(name, lines)
     if not nodes:
-        raise _single("file-empty", whole, "the file holds only comments", expected="one YAML mapping")
-    if len(nodes) > 1:
-        place = _place(nodes[1], name, lines)
-        raise _single("yaml-several-documents", place, "the file holds more than one document",
-                      expected="one document, without a line of three dashes in it")
+        raise Faults([*faults, Fault("file-empty", whole, "the file holds only comments", "", "one YAML mapping")])
     builder = _Builder(name, lines)
+    builder.collector.take(faults)
+    if len(nodes) > 1:
+        dashes = next(number for number in range(nodes[1].start_mark.line, -1, -1)
+                      if lines[number].startswith("---"))
+        place = Place(name, dashes + 1, 1, 4, lines[dashes])
+        builder.collector.add("yaml-several-documents", place, "the file holds more than one document",
+                              expected="one document, without a line of three dashes in it")
     root = builder.build(nodes[0], 0)
-    builder.collector.stop_if_any()
+    if collector is None:
+        builder.collector.stop_if_any()
+    else:
+        collector.take(builder.collector)
     return Document(name, text, root)
+
+
+# Control characters, what YAML takes for the end of a line and no editor does, and the marks that turn
+# the direction of writing: a reviewer would not see what the file says.
+_FORBIDDEN = re.compile(
+    "[\x00-\x08\x0b\x0c\x0e-\x1f\x7f-\x9f\u2028\u2029\u202a-\u202e\u2066-\u2069\ufeff\ufffe\uffff]"
+)
+
+
+def _refuse_characters(text: str, name: str, lines: list[str]) -> None:
+    forbidden = _FORBIDDEN.search(text)
+    if forbidden is None:
+        return
+    line = text.count("\n", 0, forbidden.start())
+    column = forbidden.start() - text.rfind("\n", 0, forbidden.start())
+    character = f"U+{ord(forbidden.group()):04X}"
+    raise _single("file-not-text", Place(name, line + 1, column, column + 1, lines[line]),
+                  f"the character {character} cannot be seen and stands in no text",
+                  found=character, expected="plain UTF-8 text; remove the character")
 
 
 def _compose(text: str) -> list[yaml.Node]:
@@ -133,6 +160,42 @@ def _compose(text: str) -> list[yaml.Node]:
     finally:
         loader.dispose()
     return nodes
+
+
+def _composed(name: str, lines: list[str]) -> tuple[list[yaml.Node], list[Fault]]:
+    """The documents of a text, and the faults of syntax that could be mended to read on.
+
+    A mended text has the same characters at the same places, but for one: what follows keeps its columns.
+    Raises ``Faults`` where nothing can be read on.
+    """
+    faults: list[Fault] = []
+    text = list(lines)
+    nodes, error = _attempt(text)
+    small = sum(map(len, lines)) <= MENDED_UP_TO
+    for _ in range(MAXIMUM_SYNTAX_FAULTS):
+        if error is None:
+            return nodes, faults
+        for fault, mended in _suspects(error, name, lines, text):
+            if mended is None or not small:
+                raise Faults([*faults, fault])
+            nodes, following = _attempt(mended)
+            if following is None or _mark(following) > _mark(error):
+                faults.append(fault)
+                text, error = mended, following
+                break
+    raise Faults(faults)
+
+
+def _attempt(lines: list[str]) -> tuple[list[yaml.Node], yaml.YAMLError | None]:
+    try:
+        return _compose("\n".join(lines)), None
+    except yaml.YAMLError as error:
+        return [], error
+
+
+def _mark(error: yaml.YAMLError) -> tuple[int, int]:
+    mark = getattr(error, "problem_mark", None) or getattr(error, "context_mark", None)
+    return (mark.line, mark.column) if mark is not None else (0, 0)
 
 
 def _text_of(path: Path, called: str) -> str:
@@ -176,62 +239,79 @@ class _Builder:
         self.collector = Collector()
         self.seen: set[int] = set()
 
-    def build(self, node: yaml.Node, depth: int) -> Node:
+    def build(self, node: yaml.Node, depth: int, key: Place | None = None) -> Node:
+        """A node of our tree; a mapping or list in lines of its own stands at its ``key``."""
         place = _place(node, self.name, self.lines)
         if id(node) in self.seen:
             self.collector.add("yaml-alias", place, "a YAML alias repeats an earlier part",
                                expected="the value itself, written out")
-            return Scalar("", place)
+            return Scalar("alias", place, "quoted")
         self.seen.add(id(node))
-        first = place.excerpt[place.column - 1 : place.column]
-        if first in ("&", "!"):
-            kind = "anchor" if first == "&" else "tag"
-            self.collector.add("yaml-alias", place, f"`{first}` starts a YAML {kind}, not a text",
-                               found=shown(place.excerpt[place.column - 1 :]),
-                               expected="the value in quotes, or without the mark")
+        self._look_for_mark(place)
         if depth > MAXIMUM_DEPTH:
             self.collector.add("yaml-too-deep", place, "the file is nested too deeply",
                                expected=f"at most {MAXIMUM_DEPTH} levels")
-            return Scalar("", place)
+            return Scalar("too deep", place, "quoted")
         if isinstance(node, yaml.ScalarNode):
             return self._scalar(node, place)
+        if key is not None and not node.flow_style:
+            place = key
         if isinstance(node, yaml.SequenceNode):
             return Sequence(tuple(self.build(item, depth + 1) for item in node.value), place)
-        return self._mapping(node, place, depth)
+        return self._mapping(node, place, depth, key)
+
+    def _look_for_mark(self, place: Place) -> None:
+        first = place.excerpt[place.column - 1 : place.column]
+        if first in ("&", "!"):
+            kind = "anchor" if first == "&" else "tag"
+            end = re.search(r"[\s,}\]]|$", place.excerpt[place.column - 1 :])
+            assert end is not None
+            where = place.part(0, end.start())
+            self.collector.add("yaml-alias", where, f"`{first}` starts a YAML {kind}, not a text",
+                               found=shown(place.excerpt[place.column - 1 :]),
+                               expected="the value in quotes, or without the mark")
 
     def _scalar(self, node: yaml.ScalarNode, place: Place) -> Scalar:
         style = {"'": "quoted", '"': "quoted", "|": "block", ">": "block"}.get(node.style or "", "plain")
-        if style == "plain" and node.value:
-            self._look_for_cut(node, place)
+        cut = self._cut(node) if style == "plain" else None
+        if cut is not None and not node.value:
+            return Scalar(cut.excerpt[cut.column - 1 :].strip(), cut)
         return Scalar(node.value, place, style)
 
-    def _look_for_cut(self, node: yaml.ScalarNode, place: Place) -> None:
+    def _cut(self, node: yaml.ScalarNode) -> Place | None:
         """`drawing #12` loses its number: a comment that does not look like one is a fault."""
         line = self.lines[node.end_mark.line] if node.end_mark.line < len(self.lines) else ""
         rest = line[node.end_mark.column :]
         cut = re.match(r"(\s+)#(\S?)", rest)
-        if cut and (cut.group(1) == " " or cut.group(2)) and not rest.startswith(("  # ", " # ---")):
-            column = node.end_mark.column + len(cut.group(1)) + 1
-            where = Place(self.name, node.end_mark.line + 1, column, len(line) + 1, line)
-            self.collector.add("comment-cuts-text", where, "` #` starts a comment and cuts the text short",
-                               found=shown(node.value),
-                               expected="the whole text in quotes, or two blanks before and one after the #")
+        after_text = node.value and cut is not None and cut.group(1) == " "
+        if cut is None or not (after_text or cut.group(2)) or rest.startswith(" # ---"):
+            return None
+        column = node.end_mark.column + len(cut.group(1)) + 1
+        where = Place(self.name, node.end_mark.line + 1, column, len(line) + 1, line)
+        self.collector.add("comment-cuts-text", where, "` #` starts a comment and cuts the text short",
+                           found=shown(line[column - 1 :]),
+                           expected="the whole text in quotes, or two blanks before and one after the #")
+        return where
 
-    def _mapping(self, node: yaml.MappingNode, place: Place, depth: int) -> Mapping:
+    def _mapping(self, node: yaml.MappingNode, place: Place, depth: int, own_key: Place | None) -> Mapping:
         entries: list[tuple[Scalar, Node]] = []
         first_line: dict[str, int] = {}
         for key_node, value_node in node.value:
             key = self.build(key_node, depth + 1)
             if not isinstance(key, Scalar):
                 self.collector.add("key-not-text", key.place, "a key must be a text",
-                                   expected="a key such as `title`")
+                                   found="a list" if isinstance(key, Sequence) else "a mapping",
+                                   expected="a key such as `title`; a text that starts with { or [ in quotes")
                 continue
+            value = self.build(value_node, depth + 1, key.place)
             if key.text in first_line:
                 self.collector.add("key-twice", key.place, f"the key `{shown(key.text)}` is written twice",
                                    found=f"first on line {first_line[key.text]}", expected="each key once")
                 continue
             first_line[key.text] = key.place.line
-            entries.append((key, self.build(value_node, depth + 1)))
+            entries.append((key, value))
+        if own_key is None and not node.flow_style and entries:
+            place = entries[0][0].place
         return Mapping(tuple(entries), place, bool(node.flow_style))
 
 
@@ -242,51 +322,121 @@ def _place(node: yaml.Node, name: str, lines: list[str]) -> Place:
     return Place(name, start.line + 1, start.column + 1, max(stop, start.column + 2), excerpt)
 
 
-def _syntax_fault(error: yaml.YAMLError, name: str, lines: list[str]) -> Fault:
-    """Our own words for the commonest ways in which YAML text goes wrong."""
-    mark = getattr(error, "problem_mark", None)
-    line = min(mark.line, len(lines) - 1) if mark else 0
-    column = mark.column if mark else 0
-    excerpt = lines[line]
-    place = Place(name, line + 1, column + 1, column + 2, excerpt)
-    cut = _comment_in_braces(lines, line)
-    if cut is not None:
-        return Fault("comment-cuts-text", Place(name, cut[0] + 1, cut[1] + 1, len(lines[cut[0]]) + 1, lines[cut[0]]),
+# --- faults of syntax -----------------------------------------------------------------------------
+
+
+_Suspect = tuple[Fault, list[str] | None]
+
+
+def _suspects(error: yaml.YAMLError, name: str, lines: list[str], text: list[str]) -> Iterator[_Suspect]:
+    """What may be wrong, in our own words: a fault and the text mended, None where it cannot be mended.
+
+    ``lines`` are the lines as typed, ``text`` those lines with the faults before this one mended. The last
+    suspect cannot be mended.
+    """
+    line, column = _mark(error)
+    line = min(line, len(lines) - 1)
+    context = getattr(error, "context_mark", None)
+    begun = min(context.line, len(lines) - 1) if context is not None else line
+
+    def place(number: int, start: int, end: int) -> Place:
+        return Place(name, number + 1, start + 1, max(end, start + 1) + 1, lines[number])
+
+    def mended(number: int, start: int, new: str) -> list[str]:
+        return [*text[:number], text[number][:start] + new + text[number][start + 1 :], *text[number + 1 :]]
+
+    for number, start in _comments_in_braces(text, line):
+        yield (Fault("comment-cuts-text", place(number, start, len(lines[number])),
                      "` #` starts a comment inside { } and cuts the text short",
-                     shown(lines[cut[0]][cut[1] :]), "the text in quotes")
-    colon = re.search(r"^\s*(?:- )?[^\s#'\"{\[][^#'\"{\[]*?: +[^'\"{\[|>].*?(: )", excerpt)
-    if colon:
-        return Fault("colon-in-text", Place(name, line + 1, colon.start(1) + 1, colon.end(1), excerpt),
-                     "`: ` inside a text starts a new key",
-                     shown(excerpt.strip()), "the whole text in quotes")
-    if "\t" in excerpt[: len(excerpt) - len(excerpt.lstrip())]:
-        return Fault("yaml-tab", place, "a tab is used to indent", "", "blanks")
-    if excerpt[column : column + 1] == "*":
-        return Fault("yaml-alias", place, "`*` starts a YAML alias, not a text", "", "the value in quotes")
-    opened = _unclosed(lines, line)
+                     shown(lines[number][start:]), "the text in quotes"), mended(number, start, "_"))
+    for number in dict.fromkeys((line, begun)):
+        colon = re.search(r"^\s*(?:- )?[^\s#'\"{\[][^#'\"{\[]*?: +[^'\"{\[|>\s].*?(:)(?= |$)", text[number])
+        if colon:
+            yield (Fault("colon-in-text", place(number, colon.start(1), colon.end(1)),
+                         "`: ` inside a text starts a new key",
+                         shown(lines[number].strip()), "the whole text in quotes"),
+                   mended(number, colon.start(1), ";"))
+        for start in _colons_in_braces(text[number]):
+            yield (Fault("colon-in-text", place(number, start, start + 1), "`: ` inside a text starts a new key",
+                         shown(lines[number].strip()), "the whole text in quotes"), mended(number, start, ";"))
+    first = text[line][column : column + 1]
+    if "\t" in text[line][: len(text[line]) - len(text[line].lstrip())]:
+        start = text[line].index("\t")
+        yield Fault("yaml-tab", place(line, start, start + 1), "a tab is used to indent", "", "blanks"), None
+    if first == "*":
+        yield (Fault("yaml-alias", place(line, column, column + 1), "`*` starts a YAML alias, not a text", "",
+                     "the value in quotes"), mended(line, column, "_"))
+    if first and first in "@`%":
+        yield (Fault("yaml-syntax", place(line, column, column + 1), f"a text cannot start with `{first}`", "",
+                     "the whole text in quotes"), mended(line, column, "_"))
+    opened = _unclosed(text, line)
     if opened is not None:
         bracket = lines[opened[0]][opened[1]]
-        return Fault("yaml-syntax", Place(name, opened[0] + 1, opened[1] + 1, opened[1] + 2, lines[opened[0]]),
-                     f"`{bracket}` is not closed, or a `: ` or comma inside it is not quoted", "",
-                     "`}` or `]` at the end, texts with `: ` or a comma in quotes")
-    return Fault("yaml-syntax", place, "the text is not YAML from here on",
-                 shown(excerpt.strip()), "`key: value` lines, indented by blanks alike")
+        fault = Fault("yaml-syntax", place(opened[0], opened[1], opened[1] + 1),
+                      f"`{bracket}` is not closed, or a `: ` or comma inside it is not quoted", "",
+                      "`}` or `]` at the end, texts with brackets, `: ` or a comma in quotes")
+        end = len(text[opened[0]])
+        yield fault, mended(opened[0], end, "}" if bracket == "{" else "]")
+        yield fault, None
+    yield _unmended(error, place, lines, line, column, begun), None
 
 
-def _comment_in_braces(lines: list[str], last: int) -> tuple[int, int] | None:
+def _unmended(error: yaml.YAMLError, place: Callable[[int, int, int], Place], lines: list[str], line: int,
+              column: int, begun: int) -> Fault:
+    """The fault of a text that cannot be read on."""
+    problem = str(getattr(error, "problem", ""))
+    source = lines[begun]
+    indent = len(source) - len(source.lstrip())
+    if "expected ':'" in problem and ":" not in source:
+        return Fault("yaml-syntax", place(begun, indent, len(source)), "the line has no `: ` between key and value",
+                     shown(source.strip()), "a line `key: value`")
+    quote = source.lstrip()[:1] if source.lstrip()[:1] in ("'", '"') else next(
+        (mark for mark in ('"', "'") if source.count(mark) % 2), "")
+    if "end of stream" in problem and quote:
+        start = source.rindex(quote) if source.count(quote) % 2 else source.index(quote)
+        return Fault("yaml-syntax", place(begun, start, start + 1), f"the quote `{quote}` is not closed", "",
+                     "the same quote at the end of the text; a quote inside the text written twice")
+    spaces = len(lines[line]) - len(lines[line].lstrip())
+    if column == spaces and "expected" in problem and lines[line].strip():
+        return Fault("yaml-syntax", place(line, spaces, len(lines[line])),
+                     "the line does not fit the lines above: its indent, or what stands before it", "",
+                     "`key: value` lines of one mapping at one indent, in blanks")
+    return Fault("yaml-syntax", place(line, column, column + 1), "the text is not YAML from here on",
+                 shown(lines[line].strip()), "`key: value` lines, indented by blanks alike")
+
+
+def _unquoted(line: str) -> str:
+    """A line with what stands in quotes blanked out, of the same length."""
+    return re.sub(r"\"[^\"]*\"|(?<![\w'])'[^']*'", lambda quoted: " " * len(quoted.group()), line)
+
+
+def _comments_in_braces(lines: list[str], last: int) -> Iterator[tuple[int, int]]:
     """Where a ` #` inside an open `{` stands, looking back from the line of the error."""
     for number in range(last, max(-1, last - 30), -1):
-        line = lines[number]
-        for match in re.finditer(r" #", line):
+        line = _unquoted(lines[number])
+        for match in re.finditer(r"(?<=\s)#", line):
             before = line[: match.start()]
-            if before.count("{") > before.count("}") and before.count('"') % 2 == 0 and before.count("'") % 2 == 0:
-                return number, match.start() + 1
-    return None
+            if before.count("{") > before.count("}"):
+                yield number, match.start()
+
+
+def _colons_in_braces(line: str) -> Iterator[int]:
+    """Where a second `: ` stands between two commas inside `{ }`."""
+    plain = _unquoted(line)
+    opening = plain.find("{")
+    seen = False
+    for start in range(opening + 1 if opening >= 0 else len(plain), len(plain)):
+        if plain[start] in ",{}[]":
+            seen = False
+        elif plain[start] == ":" and plain[start + 1 : start + 2] in (" ", ""):
+            if seen:
+                yield start
+            seen = True
 
 
 def _unclosed(lines: list[str], last: int) -> tuple[int, int] | None:
     for number in range(last, max(-1, last - 30), -1):
-        line = re.sub(r"\"[^\"]*\"|'[^']*'", lambda quoted: " " * len(quoted.group()), lines[number])
+        line = _unquoted(lines[number])
         for bracket, closing in (("{", "}"), ("[", "]")):
             if line.count(bracket) > line.count(closing):
                 return number, line.rfind(bracket)
@@ -403,12 +553,27 @@ def read_mapping(node: Node | None, description: Description, collector: Collect
 
 def _report_unknown(node: Mapping, key: Scalar, value: Node, description: Description, collector: Collector) -> None:
     if node.in_braces and isinstance(value, Scalar) and value.is_empty:
+        before = _before(node, key)
+        if before is not None and re.fullmatch(r"[-+]?\d+", before.text) and key.text[:1].isdigit():
+            written = f"{before.text},{key.text}"
+            place = before.place.part(0, key.place.end_column - before.place.column)
+            collector.add("number-decimal-comma", place, f"`{shown(written)}` has a decimal comma",
+                          found=shown(written), expected=f"a decimal point: {shown(written.replace(',', '.', 1))}")
+            return
         collector.add("comma-starts-key", key.place, f"the comma starts a new key `{shown(key.text)}`",
                       expected="the text before it in quotes, if the comma belongs to the text")
         return
     collector.add("key-unknown", key.place, f"{description.name} has no key `{shown(key.text)}`",
                   found=shown(key.text), expected=_key_list(description),
                   nearest=nearest_names(key.text, description.names()))
+
+
+def _before(node: Mapping, key: Scalar) -> Scalar | None:
+    """The value that stands right before a key, on its line."""
+    for (_, value), (following, _) in zip(node.entries, node.entries[1:], strict=False):
+        if following is key and isinstance(value, Scalar) and value.place.line == key.place.line:
+            return value
+    return None
 
 
 def _report_missing(fields: Fields, description: Description, collector: Collector,
@@ -422,15 +587,28 @@ def _report_missing(fields: Fields, description: Description, collector: Collect
 def _shape_holds(key: Scalar, value: Node, known: Key, collector: Collector) -> bool:
     """Whether a value has the shape its key asks for; what its text means is the reader's business."""
     name = key.text
-    if isinstance(value, Scalar) and value.is_empty and known.kind not in ("mapping", "node"):
+    if isinstance(value, Scalar) and not value.text.strip() and (known.required or known.kind != "prose"):
+        # a source or a meaning may be left empty: an open item, no fault
         collector.add("value-missing", key.place, f"`{name}` has no value", expected=known.meaning)
         return False
-    if known.kind == "node" or known.kind == "mapping":
+    if known.kind == "node":
         return True
-    if known.kind == "list":
-        if isinstance(value, Sequence):
+    if known.kind == "mapping":
+        if isinstance(value, Mapping):
             return True
-        collector.add("list-expected", value.place, f"`{name}` must be a list", expected=known.meaning)
+        collector.add("mapping-expected", value.place, f"`{name}` must be a mapping",
+                      found="a list" if isinstance(value, Sequence) else shown(value.text),
+                      expected=_keys_of(known))
+        return False
+    if known.kind == "list":
+        if isinstance(value, Sequence) and value.items:
+            return True
+        if isinstance(value, Sequence):
+            collector.add("value-missing", key.place, f"`{name}` is an empty list", expected=known.meaning)
+            return False
+        collector.add("list-expected", value.place, f"`{name}` must be a list",
+                      found="a mapping" if isinstance(value, Mapping) else shown(value.text),
+                      expected=f"lines that start with a hyphen: {known.meaning}")
         return False
     if not isinstance(value, Scalar):
         collector.add("value-not-text", value.place, f"`{name}` must be a single value",
@@ -448,8 +626,13 @@ def _shape_holds(key: Scalar, value: Node, known: Key, collector: Collector) -> 
     return True
 
 
+def _keys_of(key: Key) -> str:
+    described = key.described()
+    return f"key: value lines ({_key_list(described) if described is not None else key.meaning})"
+
+
 def _key_list(description: Description) -> str:
-    names = list(description.names())
+    names = [key.name for key in description.keys if not key.later]
     if description.free is not None:
         names.append(description.free.meaning)
     return ", ".join(names)

@@ -131,4 +131,5 @@ CODES: dict[str, str] = {
     "table-row-length": "a row that does not fit its columns",
     "use-circular": "cards that use each other in a circle",
     "number-in-two-files": "two calculations of a book with one number",
+    "output-not-writable": "the output folder cannot be written",
 }

@@ -17,6 +17,11 @@ from dataclasses import dataclass, field
 from calcbook.fault_codes import CODES
 
 EXCERPT_WIDTH = 110
+# A text that YAML takes for something else: other faults at the same place only follow from it.
+TRAPS = frozenset(
+    ("colon-in-text", "comma-starts-key", "comment-cuts-text", "key-twice", "number-decimal-comma", "yaml-alias",
+     "yaml-too-deep")
+)
 
 
 @dataclass(frozen=True, slots=True, order=True)
@@ -57,6 +62,8 @@ class Fault:
     def __str__(self) -> str:
         lines = [f"{self.place.file}:{self.place.line}:{self.place.column}: {self.code}: {self.message}"]
         lines += _excerpt_lines(self.place)
+        if self.found and self.found not in self.message and self.found not in self.place.excerpt:
+            lines.append(f"    found: {self.found}")
         if self.expected:
             lines.append(f"    expected: {self.expected}")
         if self.nearest:
@@ -68,11 +75,24 @@ class Faults(Exception):
     """Every fault of one stage, sorted by place, none twice."""
 
     def __init__(self, faults: Iterable[Fault]):
-        self.faults: tuple[Fault, ...] = tuple(sorted(set(faults), key=lambda fault: fault.sort_key))
+        self.faults: tuple[Fault, ...] = _without_echoes(sorted(set(faults), key=lambda fault: fault.sort_key))
         super().__init__(f"{len(self.faults)} fault(s)")
 
     def __str__(self) -> str:
         return "\n".join(str(fault) for fault in self.faults)
+
+
+def _without_echoes(faults: list[Fault]) -> tuple[Fault, ...]:
+    """Without what only follows from a text that YAML read differently than it was meant."""
+    traps = [fault for fault in faults if fault.code in TRAPS]
+    return tuple(fault for fault in faults
+                 if fault.code in TRAPS or not any(_overlap(fault.place, trap.place) for trap in traps))
+
+
+def _overlap(one: Place, other: Place) -> bool:
+    return ((one.file, one.line) == (other.file, other.line)
+            and one.column < max(other.end_column, other.column + 1)
+            and other.column < max(one.end_column, one.column + 1))
 
 
 class Collector:
@@ -138,10 +158,17 @@ def _excerpt_lines(place: Place) -> list[str]:
         return []
     text = "".join(
         " " if unicodedata.category(character)[0] == "C" else character for character in place.excerpt
-    )
-    start = max(0, place.column - 1 - EXCERPT_WIDTH // 2) if len(text) > EXCERPT_WIDTH else 0
+    ).rstrip()
+    first = min(place.column - 1, len(text))
+    start = max(0, first - EXCERPT_WIDTH // 2) if len(text) > EXCERPT_WIDTH else 0
     cut = text[start : start + EXCERPT_WIDTH]
-    first = place.column - 1 - start
-    length = max(1, min(place.end_column - place.column, len(cut) - first))
+    before, under = cut[: first - start], cut[first - start : place.end_column - 1 - start]
     gutter = f"{place.line:>6} | "
-    return [gutter + cut.rstrip(), " " * (len(gutter) - 2) + "| " + " " * first + "^" * length]
+    carets = "^" * max(1, _width(under))
+    return [gutter + cut, " " * (len(gutter) - 2) + "| " + " " * _width(before) + carets]
+
+
+def _width(text: str) -> int:
+    """How many columns a text takes on paper and screen."""
+    wide = sum(unicodedata.east_asian_width(character) in "WF" for character in text)
+    return len(text) + wide - sum(unicodedata.combining(character) > 0 for character in text)

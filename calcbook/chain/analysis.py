@@ -167,9 +167,12 @@ class _Analysis:
     def _stream_results(self, solution: Solution, put) -> None:  # type: ignore[no-untyped-def]
         for group in (self.chain.inner, self.chain.outer):
             for branch in group.branches:
-                for mark, name, kind in (("speed", "speed", "speed"), ("Re", "Re", "Reynolds number")):
-                    step = f"{branch.name}/{mark}"
-                    if branch.stream and step in solution.values:
+                state = self.chain.streams.get(branch.stream)
+                if state is None:
+                    continue
+                speed = state.flow if state.flow_kind == "speed" else f"{branch.name}/speed"
+                for step, name, kind in ((speed, "speed", "speed"), (f"{branch.name}/Re", "Re", "Reynolds number")):
+                    if step in solution.values:
                         put(f"{name} {branch.stream}", solution.number(step), kind, f"{kind} of {branch.stream}")
 
     def _interfaces(self, solution: Solution) -> list[tuple[str, float]]:
@@ -240,14 +243,15 @@ class _Analysis:
 
     def _chains(self, solutions: Mapping[str, Solution]) -> tuple[TermChain, ...]:
         """The rows of every term, each step once, at the term that uses it first."""
-        seen: set[str] = set()
+        owners = {name for element in self.chain.elements for name in _names(element)}
+        shared = tuple(step for step in self.chain.steps if step.owner not in owners)
         chains = []
-        owners = [("givens and geometry", self.chain.steps)] if self.chain.steps else []
-        for owner, steps in owners:
-            chains.append(TermChain(owner, "figures that terms share", self._rows(steps, solutions), ()))
-            seen |= {step.id for step in steps}
+        if shared:
+            chains.append(TermChain("shared figures", "geometry, streams and derived quantities",
+                                    self._rows(shared, solutions), ()))
+        seen = {step.id for step in shared}
         for element in self.chain.elements:
-            steps: list[ChainStep] = []
+            steps = [step for step in self.chain.steps if step.owner in _names(element)]
             notes: list[str] = []
             if isinstance(element, Layer):
                 steps += element.steps
@@ -477,6 +481,13 @@ def chosen(branch: Branch, solution: Solution) -> Candidate:
 def _dimensions(chain: Chain) -> dict[str, tuple]:
     """The dimension of every figure of a chain by id."""
     return dict(chain.dimensions)
+
+
+def _names(element: Group | Layer) -> set[str]:
+    """The names under which an element's steps stand."""
+    if isinstance(element, Layer):
+        return {element.name}
+    return {element.name, *(branch.name for branch in element.branches)}
 
 
 def _value(solution: Solution, name: str) -> float | bool:

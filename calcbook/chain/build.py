@@ -46,6 +46,7 @@ class _Builder:
         self.scope = Scope(calculation, collector)
         self.streams: dict[str, StreamState] = {}
         self.checks: list[ChainCheck] = []
+        self.early: frozenset[str] = frozenset()
 
     def chain(self) -> Chain | None:
         calculation, scope = self.calculation, self.scope
@@ -61,6 +62,7 @@ class _Builder:
         if not self._order_holds(terms) or shape is None:
             self._mark_unused()
             return None
+        self.early = frozenset(scope.steps)
         elements = self._elements(terms, shape)
         basis = shape.surface_named(scope, calculation.report.u_on, calculation.report.u_on_place) \
             if calculation.report.u_on else None
@@ -75,8 +77,8 @@ class _Builder:
     def _finished(self, elements: tuple[Element, ...], shape: Shape, basis: int, circuit: tuple[ChainStep, ...],
                   results: dict[str, str]) -> Chain:
         scope = self.scope
-        inner = {step.id for element in elements for step in _steps_of(element)} | {step.id for step in circuit}
-        static = tuple(step for step in scope.steps.values() if step.id not in inner)
+        later = {step.id for element in elements for step in _steps_of(element)} | {step.id for step in circuit}
+        static = tuple(step for step in scope.steps.values() if step.id in self.early or step.id not in later)
         self._mark_unused()
         return Chain(
             calculation=self.calculation,

@@ -1,39 +1,42 @@
-"""The engine: all drops of temperature solved together, on arrays, each sample to its own convergence.
+"""The engine: the circuit closed on arrays of samples, each sample to its own answer.
 
-Unknowns are the heat flow Q and one temperature drop per element whose resistance follows its own
-temperatures. Where every branch refers to its own fluid, ln Q and ln |drop| are iterated: a power law is
-then met in one pass. Residuals and their derivatives come from the relations' own trees. A sample is
-frozen at its own convergence, so its answer does not depend on its neighbours. Stragglers are bracketed
-in Q, where the summed drop rises with Q.
+Films and walls are functions of the surface temperatures and of the heat flux, made from the relations
+of the cards. ``closing`` finds the heat flow and the temperature drops at which all of them agree; what it
+leaves open is bracketed. A sample's answer does not depend on its neighbours, and many samples are solved
+in pieces of fixed size, so that the memory for work on the way stays small.
 """
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Collection, Mapping
 from dataclasses import dataclass, field
 
 import numpy as np
 
 from calcbook.chain.build import follows_temperature
 from calcbook.chain.circuit import branch_coefficient
-from calcbook.chain.types import CLEAN, Branch, Candidate, Chain, ChainStep, Element, Group, Layer
+from calcbook.chain.types import CLEAN, Branch, Candidate, Chain, ChainStep, Group, Layer
 from calcbook.formulas import evaluate
-from calcbook.library.operations import Slopes, carry, run
+from calcbook.library.operations import Slopes, run
 
 Array = np.ndarray
-MAXIMUM_PASSES = 80
-STEP_TOLERANCE = 1e-13
-LARGEST_LOG_STEP = 2.0
-RESIDUAL_TOLERANCE = 1e-9
+# Samples solved together: arrays of this size stay in the processor's cache.
+PIECE = 8192
+# Two sides of a joint are apart when they differ by more than rounding.
+JOINT_SHIFT = 1e-9
+JOINT_GAP = 1e-7
+# A law that is met less well than this at the end has no answer there.
+RESIDUAL_TOLERANCE = 1e-10
+ONE = np.ones(())
 
 
 @dataclass
 class Solution:
     """The figures of one condition: every step by id, which method each film used, and what did not close.
 
-    ``values`` hold arrays of the samples' shape (0-d for a record). ``chosen`` is the candidate of each
-    branch per sample. ``converged`` is False for a sample without an answer; ``jump`` names, per group, the
-    samples whose law has no root at a joint.
+    ``values`` hold arrays of the samples' shape (0-d for a record, and for what does not vary). ``chosen`` is
+    the candidate of each branch per sample. ``converged`` is False for a sample without an answer. ``jumps``
+    marks, per film, the samples whose law has no root at a joint; ``jump_sides`` holds both coefficients.
     """
 
     condition: str
@@ -49,122 +52,292 @@ class Solution:
 
 
 def solve(chain: Chain, inputs: Mapping[str, Array], condition: str,
-          forced: Mapping[str, Candidate] | None = None) -> Solution:
+          forced: Mapping[str, Candidate] | None = None, keep: Collection[str] | None = None) -> Solution:
     """Solve a chain for one condition on SI arrays of its inputs (by id, broadcast together).
 
-    ``forced`` puts a candidate in place of a film's own choice, for the cross-check.
+    ``forced`` puts a candidate in place of a film's own choice, for the cross-check. ``keep`` names the
+    steps whose values are wanted; without it all are kept, which for many samples takes much memory.
     """
-    return _Engine(chain, inputs, condition, forced or {}).solve()
+    shape = np.broadcast_shapes(*(np.shape(value) for value in inputs.values()))
+    size = int(np.prod(shape, dtype=int))
+    flat = {name: _flat(value, shape) for name, value in inputs.items()}
+    joined = _Joined(condition, shape, size)
+    with np.errstate(all="ignore"):
+        for start in range(0, max(size, 1), PIECE):
+            piece = slice(start, min(start + PIECE, size))
+            part = {name: value[piece] if value.ndim else value for name, value in flat.items()}
+            engine = Engine(chain, part, condition, forced or {}, 1 if shape == () else piece.stop - start)
+            engine.solve()
+            joined.take(engine, piece, keep)
+    return joined.solution()
 
 
-class _Engine:
-    def __init__(self, chain: Chain, inputs: Mapping[str, Array], condition: str, forced: Mapping[str, Candidate]):
+def _flat(value: Array, shape: tuple[int, ...]) -> Array:
+    """An input as one row of samples; what is one number for all stays one number."""
+    array = np.asarray(value, dtype=float)
+    return array if array.ndim == 0 else np.ascontiguousarray(np.broadcast_to(array, shape)).ravel()
+
+
+@dataclass
+class _Joined:
+    """The pieces of a solution put together in the samples' shape."""
+
+    condition: str
+    shape: tuple[int, ...]
+    size: int
+    values: dict[str, Array] = field(default_factory=dict)
+    chosen: dict[str, Array] = field(default_factory=dict)
+    marks: dict[str, Array] = field(default_factory=dict)
+    jumps: dict[str, Array] = field(default_factory=dict)
+    lower: dict[str, Array] = field(default_factory=dict)
+    upper: dict[str, Array] = field(default_factory=dict)
+
+    def take(self, engine: Engine, piece: slice, keep: Collection[str] | None) -> None:
+        wanted = engine.values if keep is None else {name: engine.values[name] for name in keep if name in engine.values}
+        for name, value in wanted.items():
+            if isinstance(value, np.ndarray) and value.ndim:
+                self._put(self.values, name, value, piece, np.nan)
+            else:
+                self.values[name] = value
+        for name, value in engine.chosen.items():
+            self._put(self.chosen, name, value, piece, 0)
+        self._put(self.marks, "converged", engine.converged, piece, False)
+        for name, (low, high) in engine.jump_sides.items():
+            self._put(self.lower, name, low, piece, np.nan)
+            self._put(self.upper, name, high, piece, np.nan)
+            self._put(self.jumps, name, np.isfinite(low), piece, False)
+
+    def _put(self, place: dict[str, Array], name: str, value: Array, piece: slice, absent: float) -> None:
+        if name not in place:
+            if len(value) == self.size:
+                place[name] = value
+                return
+            place[name] = np.full(self.size, absent, dtype=value.dtype)
+        place[name][piece] = value
+
+    def solution(self) -> Solution:
+        sides = {name: (self._shaped(self.lower[name]), self._shaped(self.upper[name])) for name in self.lower}
+        return Solution(self.condition, {name: self._shaped(value) for name, value in self.values.items()},
+                        {name: self._shaped(value) for name, value in self.chosen.items()},
+                        self._shaped(self.marks["converged"]),
+                        {name: self._shaped(value) for name, value in self.jumps.items()}, sides)
+
+    def _shaped(self, value: Array) -> Array:
+        return value.reshape(self.shape) if isinstance(value, np.ndarray) and value.ndim else value
+
+
+@dataclass(frozen=True)
+class _Plan:
+    """What is evaluated anew whenever the temperatures of an element move.
+
+    ``wanted`` is the id of the result, ``following`` are the steps that lead to it from what moves, and
+    ``outside`` the ids that they take from what stays.
+    """
+
+    wanted: str
+    following: tuple[ChainStep, ...]
+    outside: tuple[str, ...]
+
+
+class Engine:
+    """One piece of samples on its way to the solution."""
+
+    def __init__(self, chain: Chain, inputs: Mapping[str, Array], condition: str, forced: Mapping[str, Candidate],
+                 size: int):
         self.chain = chain
         self.forced = forced
         self.condition = condition
-        self.shape = np.broadcast_shapes(*(np.shape(value) for value in inputs.values()))
-        self.size = int(np.prod(self.shape, dtype=int))
+        self.size = size
+        self.single = all(value.ndim == 0 for value in inputs.values())
+        self.everything = np.arange(size)
         self.values: dict[str, Array] = dict(chain.constants)  # type: ignore[arg-type]
-        for name, value in inputs.items():
-            array = np.asarray(value, dtype=float)
-            self.values[name] = array if array.ndim == 0 else np.ascontiguousarray(
-                np.broadcast_to(array, self.shape)).ravel()
-        self.slopes: Slopes = {}
-        self.splits: dict[tuple[str, int], tuple[tuple[ChainStep, ...], tuple[ChainStep, ...]]] = {}
+        self.values.update(inputs)
         self.moving = [element for element in chain.elements if follows_temperature(element)]
+        # The number of a moving element; elements themselves are compared by all they hold, which takes long.
+        self.numbers = {element.name: number for number, element in enumerate(self.moving)}
         self.foreign = any(isinstance(element, Group) and any(branch.reference != element.bulk for branch in element.branches)
                            for element in chain.elements)
+        self.plans: dict[str, _Plan] = {}
+        self.choices: dict[str, Array] = {}
+        self.areas: dict[str, Array] = {}
         self.chosen: dict[str, Array] = {}
-        self.jumps: dict[str, Array] = {}
+        self.converged = np.ones(size, dtype=bool)
+        self.held_choice: dict[str, Array] = {}
+        self.held_value: dict[str, Array] = {}
         self.jump_sides: dict[str, tuple[Array, Array]] = {}
 
     # -- the whole way ------------------------------------------------------------------------------
 
-    def solve(self) -> Solution:
+    def solve(self) -> None:
+        """Close the circuit and evaluate every step at the answer, into ``values``."""
         run(self.chain.steps, self.values)
-        self._fixed_resistances()
-        converged = np.ones(self.size, dtype=bool)
+        self._clean_deposits()
+        self.areas = {element.name: self.full(self.chain.surfaces[element.surface].area) for element in self.chain.elements}
         if self.chain.has_temperatures:
-            converged = self._close()
-        else:
-            self._without_temperatures()
-        self._finish()
+            from calcbook.chain.closing import close
+
+            self._fix()
+            close(self)
+        self.finish()
+        if self.chain.has_temperatures:
+            self._bracket_what_is_open()
         run(self.chain.circuit, self.values)
-        values = {name: self._shaped(value) for name, value in self.values.items()}
-        chosen = {name: self._shaped(value) for name, value in self.chosen.items()}
-        return Solution(self.condition, values, chosen, self._shaped(converged), self.jumps, self.jump_sides)
 
-    def _shaped(self, value: Array) -> Array:
-        """An array in the samples' shape; what does not vary and what is no array stays as it is."""
-        if not isinstance(value, np.ndarray) or value.ndim == 0:
-            return value
-        return value.reshape(self.shape)
+    def _bracket_what_is_open(self) -> None:
+        open_samples = np.flatnonzero(~(self.converged & (self._residual() <= RESIDUAL_TOLERANCE)))
+        if not len(open_samples):
+            return
+        self.converged[open_samples] = False
+        if not self.moving:
+            return
+        from calcbook.chain.bracket import bracket
 
-    def _full(self, name: str) -> Array:
+        self.converged[open_samples] = bracket(self, open_samples)
+        self.finish()
+
+    def full(self, name: str) -> Array:
+        """A figure for every sample."""
         return np.broadcast_to(np.asarray(self.values[name], dtype=float), (self.size,))
 
-    # -- resistances that do not move ---------------------------------------------------------------
+    def at(self, name: str, samples: Array) -> Array:
+        """A figure for some samples; what does not vary stays one number."""
+        value = self.values[name]
+        if not isinstance(value, np.ndarray) or value.ndim == 0 or len(samples) == self.size:
+            return value
+        return value[samples]
 
-    def _fixed_resistances(self) -> None:
-        """Resistance in K/W of every element that does not follow its temperatures."""
-        self.fixed: dict[str, Array] = {}
+    def part(self, value: Array, samples: Array) -> Array:
+        """Some samples of a row of all samples."""
+        return value if len(samples) == self.size else value[samples]
+
+    def _clean_deposits(self) -> None:
+        if self.condition != CLEAN:
+            return
         for element in self.chain.elements:
-            area = self._full(self.chain.surfaces[element.surface].area)
+            if isinstance(element, Layer) and element.kind == "fouling":
+                self.values[element.resistance] = np.asarray(0.0)
+
+    def _fix(self) -> None:
+        """Resistance in K/W of every element that does not follow its temperatures, and their sum."""
+        self.fixed: dict[str, Array] = {}
+        self.still = np.zeros(self.size)
+        for element in self.chain.elements:
+            if element.name in self.numbers:
+                continue
             if isinstance(element, Layer):
-                if element.kind == "fouling" and self.condition == CLEAN:
-                    self.values[element.resistance] = np.asarray(0.0)
-                if element not in self.moving:
-                    self.fixed[element.name] = self._full(element.resistance) / area
-            elif element not in self.moving:
-                self.fixed[element.name] = 1.0 / (self._group_sum(element) * area)
+                resistance = self.full(element.resistance) / self.areas[element.name]
+            else:
+                total = np.zeros(self.size)
+                for branch in element.branches:
+                    total = total + self.film(element, branch, self.everything, None, None, False)[0]
+                resistance = 1.0 / (total * self.areas[element.name])
+            self.fixed[element.name] = resistance
+            self.still = self.still + resistance
+        self.difference = self.full(self.chain.inner.bulk) - self.full(self.chain.outer.bulk)
+        self.flow = np.zeros(self.size)
+        self.drops = np.zeros((len(self.moving), self.size))
 
-    def _group_sum(self, group: Group) -> Array:
-        total = np.zeros(self.size)
-        for branch in group.branches:
-            total = total + self._film(group, branch, np.arange(self.size), self.values, self.slopes)[0]
-        return total
+    # -- plans --------------------------------------------------------------------------------------
 
-    def _without_temperatures(self) -> None:
-        for group in (self.chain.inner, self.chain.outer):
-            for branch in group.branches:
-                self._film(group, branch, np.arange(self.size), self.values, self.slopes)
+    def _plan(self, wanted: str, steps: tuple[ChainStep, ...], moving: tuple[str, ...]) -> _Plan:
+        """Sort steps into those that stay, which are evaluated now, and those that lead to ``wanted``."""
+        plan = self.plans.get(wanted)
+        if plan is None:
+            follows = self._stay(steps, moving)
+            needed = {wanted}
+            for step in reversed(steps):
+                if step.id in needed:
+                    needed.update(step.inputs.values())
+            following = tuple(step for step in steps if step.id in needed and step.id in follows)
+            outside = {bound for step in following for bound in step.inputs.values() if bound not in follows}
+            plan = self.plans[wanted] = _Plan(wanted, following, tuple(sorted(outside)))
+        return plan
+
+    def _stay(self, steps: tuple[ChainStep, ...], moving: tuple[str, ...]) -> set[str]:
+        """Evaluate the steps that do not follow what moves; returns the ids that do."""
+        follows = set(moving)
+        for step in steps:
+            if any(bound in follows for bound in step.inputs.values()):
+                follows.add(step.id)
+            elif step.id not in self.values:
+                run((step,), self.values)
+        return follows
+
+    def _evaluated(self, plan: _Plan, samples: Array, given: Mapping[str, Array], wants_slopes: bool
+                   ) -> tuple[Array, dict[str, Array]]:
+        """The wanted figure of a plan on some samples, and its slopes in what is given."""
+        count = (len(samples),)
+        if not plan.following:
+            return np.broadcast_to(np.asarray(self.at(plan.wanted, samples), dtype=float), count), {}
+        values = {name: self.at(name, samples) for name in plan.outside}
+        values.update(given)
+        slopes: Slopes | None = {name: {name: ONE} for name in given} if wants_slopes else None
+        run(plan.following, values, slopes)
+        carried = slopes.get(plan.wanted, {}) if slopes is not None else {}
+        return (np.broadcast_to(values[plan.wanted], count),
+                {name: np.broadcast_to(slope, count) for name, slope in carried.items()})
 
     # -- one film -----------------------------------------------------------------------------------
 
-    def _film(self, group: Group, branch: Branch, samples: Array, values: dict[str, Array], slopes: Slopes
-              ) -> tuple[Array, dict[str, Array]]:
-        """Film coefficient of a branch on some samples, with its derivatives; marks the method chosen.
+    def film(self, group: Group, branch: Branch, samples: Array, surface: Array | None, flux: Array | None,
+             wants_slopes: bool) -> tuple[Array, dict[str, Array]]:
+        """Film coefficient of a branch on some samples, with its slopes in surface temperature and flux.
 
-        ``values`` are those of the samples only; every step that is evaluated is written into them.
+        ``surface`` and ``flux`` are None where no temperatures are known.
         """
-        if branch.name in self.forced:
-            return self._evaluated(group, self.forced[branch.name], samples, values, slopes)
-        choice = self._choice(group, branch, samples, values, slopes)
-        whole = self.chosen.setdefault(branch.name, np.zeros(self.size, dtype=int))
-        whole[samples] = choice
-        methods = np.unique(choice)
-        if len(methods) == 1:
-            return self._evaluated(group, branch.candidates[int(methods[0])], samples, values, slopes)
-        result = np.full(len(samples), np.nan)
-        gathered: dict[str, Array] = {}
-        before = dict(values)
-        for method in methods:
-            mask = choice == method
-            part_values, part_slopes = _taken(before, mask), _taken_slopes(slopes, mask)
-            part, part_gathered = self._evaluated(group, branch.candidates[int(method)], samples[mask], part_values,
-                                                  part_slopes)
-            result[mask] = part
-            for seed, slope in part_gathered.items():
-                gathered.setdefault(seed, np.zeros(len(samples)))[mask] = slope
-            _put_back(values, before, part_values, mask)
-        return result, gathered
+        given = _given(group, surface, flux)
+        choice = self.choice(group, branch, samples, given)
+        if (choice == choice[0]).all():
+            coefficient, slopes = self._candidate(group, branch, int(choice[0]), samples, given, wants_slopes)
+        else:
+            coefficient, slopes = np.full(len(samples), np.nan), {}
+            for method in np.unique(choice):
+                mask = choice == method
+                part, part_slopes = self._candidate(group, branch, int(method), samples[mask],
+                                                    {name: value[mask] for name, value in given.items()}, wants_slopes)
+                coefficient[mask] = part
+                for name, slope in part_slopes.items():
+                    slopes.setdefault(name, np.zeros(len(samples)))[mask] = slope
+        held = self.held_value.get(branch.name)
+        if held is None:
+            return coefficient, slopes
+        is_held = np.isfinite(held[samples])
+        slopes = {name: np.where(is_held, 0.0, slope) for name, slope in slopes.items()}
+        return np.where(is_held, held[samples], coefficient), slopes
 
-    def _choice(self, group: Group, branch: Branch, samples: Array, values: dict[str, Array], slopes: Slopes) -> Array:
-        count = len(samples)
-        if not branch.choice:
-            return np.zeros(count, dtype=int)
+    def _candidate(self, group: Group, branch: Branch, method: int, samples: Array, given: Mapping[str, Array],
+                   wants_slopes: bool) -> tuple[Array, dict[str, Array]]:
+        candidate = self.forced.get(branch.name) or branch.candidates[method]
+        plan = self._plan(candidate.coefficient, candidate.steps, _moving(group))
+        return self._evaluated(plan, samples, given, wants_slopes)
+
+    def choice(self, group: Group, branch: Branch, samples: Array, given: Mapping[str, Array]) -> Array:
+        """The number of the candidate that acts, for each of some samples."""
+        if branch.name in self.forced or not branch.choice:
+            return np.zeros(len(samples), dtype=int)
+        if branch.name in self.choices:
+            choice = self.choices[branch.name][samples]
+        else:
+            choice = self._choose(group, branch, samples, given)
+        held = self.held_choice.get(branch.name)
+        return choice if held is None else np.where(held[samples] >= 0, held[samples], choice)
+
+    def _choose(self, group: Group, branch: Branch, samples: Array, given: Mapping[str, Array]) -> Array:
+        follows = self._stay(branch.choice_steps, _moving(group))
+        inputs = {bound for row in branch.choice for bound in row.inputs.values()}
+        if not inputs & follows:
+            self.choices[branch.name] = self._rows(branch, self.values, self.size)
+            return self.choices[branch.name][samples]
+        following = tuple(step for step in branch.choice_steps if step.id in follows)
+        outside = {bound for step in following for bound in step.inputs.values()} | inputs
+        values = {name: self.at(name, samples) for name in outside if name not in follows}
+        values.update(given)
+        run(following, values)
+        return self._rows(branch, values, len(samples))
+
+    def _rows(self, branch: Branch, values: Mapping[str, Array], count: int) -> Array:
+        """The first row of a choice table that holds, for each sample."""
         choice = np.full(count, len(branch.candidates) - 1)
-        self._run(group, branch.choice_steps, samples, values, slopes)
         undecided = np.ones(count, dtype=bool)
         for row in branch.choice:
             holds = np.ones(count, dtype=bool)
@@ -175,326 +348,144 @@ class _Engine:
             undecided &= ~holds
         return choice
 
-    def _evaluated(self, group: Group, candidate: Candidate, samples: Array, values: dict[str, Array], slopes: Slopes
-                   ) -> tuple[Array, dict[str, Array]]:
-        self._run(group, candidate.steps, samples, values, slopes)
-        count = (len(samples),)
-        coefficient = np.broadcast_to(np.asarray(values[candidate.coefficient], dtype=float), count)
-        carried = slopes.get(candidate.coefficient, {})
-        return coefficient, {seed: np.broadcast_to(slope, count) for seed, slope in carried.items()}
+    # -- what the moving elements carry -------------------------------------------------------------
 
-    def _run(self, group: Group, steps: tuple[ChainStep, ...], samples: Array, values: dict[str, Array], slopes: Slopes
-             ) -> None:
-        """Evaluate the steps that are not there yet; what does not follow the surface is kept for the next pass."""
-        still, following = self._split(group, steps)
-        for step in still:
-            if step.id not in values:
-                if step.id not in self.values:
-                    run([step], self.values)
-                whole = self.values[step.id]
-                values[step.id] = whole if np.ndim(whole) == 0 or len(samples) == self.size else whole[samples]
-        for step in following:
-            if step.id in values:
-                continue
-            arguments = {local: values[bound] for local, bound in step.inputs.items()}
-            value = step.operation.value(arguments)
-            values[step.id] = value
-            carried = carry(step, arguments, value, slopes)
-            if carried:
-                slopes[step.id] = carried
+    def carried(self, number: int, drops: Array, flow: Array, samples: Array, wants_slopes: bool = False
+                ) -> tuple[Array, dict[int, Array], Array]:
+        """Heat flow of one moving element at its drop; slopes by drops (by number) and by the heat flow."""
+        element = self.moving[number]
+        area = self.part(self.areas[element.name], samples)
+        if isinstance(element, Group):
+            return self._carried_by_films(element, number, drops, flow, samples, area, wants_slopes)
+        return self._carried_by_wall(element, number, drops, flow, samples, area, wants_slopes)
 
-    def _split(self, group: Group, steps: tuple[ChainStep, ...]) -> tuple[tuple[ChainStep, ...], tuple[ChainStep, ...]]:
-        """Steps that stay while the surface temperature is sought, and steps that follow it."""
-        key = (group.name, id(steps))
-        if key not in self.splits:
-            moving = {group.surface_temperature, group.flux}
-            for step in steps:
-                if any(bound in moving for bound in step.inputs.values()):
-                    moving.add(step.id)
-            self.splits[key] = (tuple(step for step in steps if step.id not in moving),
-                                tuple(step for step in steps if step.id in moving))
-        return self.splits[key]
-
-    # -- closing ------------------------------------------------------------------------------------
-
-    def _close(self) -> Array:
-        """Find Q and the drops; returns which samples converged."""
-        inside, outside = self._full(self.chain.inner.bulk), self._full(self.chain.outer.bulk)
-        self.difference = inside - outside
-        self.still = np.zeros(self.size)
-        for resistance in self.fixed.values():
-            self.still = self.still + resistance
-        count = len(self.moving)
-        self.drops = np.zeros((count, self.size))
-        self.flow = np.zeros(self.size)
-        if not self.moving:
-            self.flow = self.difference / self.still
-            return np.isfinite(self.flow)
-        self.sign = np.where(self.difference < 0.0, -1.0, 1.0)
-        idle = (self.difference == 0.0) & (not self.foreign)
-        samples = np.flatnonzero(~idle)
-        converged = idle.copy()
-        if len(samples):
-            converged[samples] = self._newton(samples)
-        stragglers = np.flatnonzero(~converged)
-        if len(stragglers):
-            from calcbook.chain.bracket import bracket
-
-            converged[stragglers] = bracket(self, stragglers)
-        return converged & np.isfinite(self.flow)
-
-    def _start(self, samples: Array) -> Array:
-        """First values: every moving element takes an equal share of the difference."""
-        count = len(self.moving)
-        share = np.abs(self.difference[samples]) / (count + 1)
-        if self.foreign:
-            share = np.maximum(share, 1.0)
-        drops = np.tile(share, (count, 1))
-        flow, _, _ = self._responses(drops * self.sign[samples], np.ones(len(samples)), samples)
-        with np.errstate(all="ignore"):
-            first = np.abs(flow[0])
-        first = np.where(np.isfinite(first) & (first > 0.0), first, np.abs(self.difference[samples]) + 1.0)
-        start = np.vstack([first, drops])
-        return start * self.sign[samples] if self.foreign else np.log(start)
-
-    def _newton(self, samples: Array) -> Array:
-        """Joint Newton on the samples; writes flow and drops; returns which converged."""
-        unknown = self._start(samples)
-        active = np.arange(len(samples))
-        done = np.zeros(len(samples), dtype=bool)
-        for _ in range(MAXIMUM_PASSES):
-            if not len(active):
-                break
-            step = self._newton_step(unknown[:, active], samples[active])
-            good = np.isfinite(step).all(axis=0)
-            step = np.where(good, step, 0.0)
-            if not self.foreign:
-                step = np.clip(step, -LARGEST_LOG_STEP, LARGEST_LOG_STEP)
-            unknown[:, active] += step
-            size = np.abs(step) if not self.foreign else np.abs(step) / np.maximum(np.abs(unknown[:, active]), 1e-30)
-            settled = (size <= STEP_TOLERANCE).all(axis=0) & good
-            done[active[settled]] = True
-            active = active[~settled & good]
-        flow, drops = self._actual(unknown, samples)
-        self.flow[samples] = flow
-        self.drops[:, samples] = drops
-        # A step may stall at the last bits without reaching the tolerance: the residual then decides.
-        residual = self._closing(flow, drops, samples)
-        return done | (residual <= RESIDUAL_TOLERANCE * 1e-3)
-
-    def _actual(self, unknown: Array, samples: Array) -> tuple[Array, Array]:
-        if self.foreign:
-            return unknown[0], unknown[1:]
-        actual = np.exp(unknown) * self.sign[samples]
-        return actual[0], actual[1:]
-
-    def _closing(self, flow: Array, drops: Array, samples: Array) -> Array:
-        """Largest relative residual of the laws and of the summed drops."""
-        responses, _, _ = self._responses(drops, flow, samples)
-        with np.errstate(all="ignore"):
-            laws = np.abs(responses / flow - 1.0).max(axis=0)
-            summed = np.abs(drops.sum(axis=0) + flow * self.still[samples] - self.difference[samples])
-            scale = np.abs(drops).sum(axis=0) + np.abs(flow) * self.still[samples]
-            worst = np.maximum(laws, summed / scale)
-        return np.where(np.isfinite(worst), worst, np.inf)
-
-    def _newton_step(self, unknown: Array, samples: Array) -> Array:
-        flow, drops = self._actual(unknown, samples)
-        responses, by_drop, by_flow = self._responses(drops, flow, samples)
-        count = len(self.moving)
-        jacobian = np.zeros((len(samples), count + 1, count + 1))
-        residual = np.zeros((len(samples), count + 1))
-        with np.errstate(all="ignore"):
-            if self.foreign:
-                residual[:, 0] = drops.sum(axis=0) + flow * self.still[samples] - self.difference[samples]
-                jacobian[:, 0, 0] = self.still[samples]
-                jacobian[:, 0, 1:] = 1.0
-                residual[:, 1:] = (responses - flow).T
-                jacobian[:, 1:, 0] = (by_flow - 1.0).T
-                jacobian[:, 1:, 1:] = by_drop.transpose(2, 0, 1)
-            else:
-                scale = self.difference[samples]
-                residual[:, 0] = (drops.sum(axis=0) + flow * self.still[samples]) / scale - 1.0
-                jacobian[:, 0, 0] = flow * self.still[samples] / scale
-                jacobian[:, 0, 1:] = (drops / scale).T
-                residual[:, 1:] = np.log(responses / flow).T
-                jacobian[:, 1:, 0] = (by_flow * flow / responses - 1.0).T
-                jacobian[:, 1:, 1:] = (by_drop * drops[None, :, :] / responses[:, None, :]).transpose(2, 0, 1)
-        return _solved(jacobian, -residual).T
-
-    # -- responses ----------------------------------------------------------------------------------
-
-    def _responses(self, drops: Array, flow: Array, samples: Array) -> tuple[Array, Array, Array]:
-        """Heat flow that each moving element carries at its drop; derivatives by every drop and by Q."""
-        count = len(self.moving)
-        responses = np.zeros((count, len(samples)))
-        by_drop = np.zeros((count, count, len(samples)))
-        by_flow = np.zeros((count, len(samples)))
-        values, slopes = self._local(samples)
-        for index, element in enumerate(self.moving):
-            response, gathered = self.response(element, index, drops, flow, samples, values, slopes)
-            responses[index] = response
-            for seed, slope in gathered.items():
-                if seed == "Q":
-                    by_flow[index] = slope
-                elif seed.startswith("drop "):
-                    by_drop[index, int(seed[5:])] = slope
-        return responses, by_drop, by_flow
-
-    def _local(self, samples: Array) -> tuple[dict[str, Array], Slopes]:
-        """The figures of some samples; what does not vary is shared, not copied."""
-        whole = len(samples) == self.size
-        values = {
-            name: value if not isinstance(value, np.ndarray) or value.ndim == 0 or whole else value[samples]
-            for name, value in self.values.items()
-        }
-        return values, dict(self.slopes)
-
-    def response(self, element: Element, index: int, drops: Array, flow: Array, samples: Array,
-                 values: dict[str, Array], slopes: Slopes) -> tuple[Array, dict[str, Array]]:
-        """Heat flow of one moving element and its derivatives by the seeds `drop <index>` and `Q`."""
-        area = self._full(self.chain.surfaces[element.surface].area)[samples]
-        if isinstance(element, Layer):
-            return self._wall_response(element, index, drops, flow, samples, values, slopes, area)
-        return self._group_response(element, index, drops, flow, samples, values, slopes, area)
-
-    def _group_response(self, group: Group, index: int, drops: Array, flow: Array, samples: Array,
-                        values: dict[str, Array], slopes: Slopes, area: Array) -> tuple[Array, dict[str, Array]]:
-        seed = f"drop {index}"
-        outward = -1.0 if group.side == "inside" else 1.0
-        drop = drops[index]
-        bulk = np.broadcast_to(np.asarray(values[group.bulk], dtype=float), (len(samples),))
-        values[group.surface_temperature] = bulk + outward * drop
-        values[group.flux] = np.abs(flow) / area
-        slopes[group.surface_temperature] = {seed: np.full(len(samples), outward)}
-        slopes[group.flux] = {"Q": np.sign(flow) / area}
-        total = np.zeros(len(samples))
-        gathered: dict[str, Array] = {}
+    def _carried_by_films(self, group: Group, number: int, drops: Array, flow: Array, samples: Array, area: Array,
+                          wants_slopes: bool) -> tuple[Array, dict[int, Array], Array]:
+        outward = _outward(group)
+        drop = drops[number]
+        bulk = self.at(group.bulk, samples)
+        total, by_drop, by_flow = np.zeros(len(samples)), np.zeros(len(samples)), np.zeros(len(samples))
         for branch in group.branches:
-            coefficient, by_seed = self._film(group, branch, samples, values, slopes)
-            values[branch_coefficient(group, branch.name)] = coefficient
-            driving = drop
-            if branch.reference != group.bulk:
-                reference = np.asarray(values[branch.reference], dtype=float)
-                driving = drop - outward * (reference - bulk)
+            coefficient, slopes = self.film(group, branch, samples, bulk + outward * drop, np.abs(flow) / area, wants_slopes)
+            driving = drop if branch.reference == group.bulk else drop + outward * (bulk - self.at(branch.reference, samples))
             total = total + coefficient * area * driving
-            for name, slope in by_seed.items():
-                gathered[name] = gathered.get(name, 0.0) + slope * area * driving
-            gathered[seed] = gathered.get(seed, 0.0) + coefficient * area
-        return total, gathered
+            if wants_slopes:
+                by_drop = by_drop + coefficient * area
+                if group.surface_temperature in slopes:
+                    by_drop = by_drop + slopes[group.surface_temperature] * (outward * area * driving)
+                if group.flux in slopes:
+                    by_flow = by_flow + slopes[group.flux] * np.sign(flow) * driving
+        return total, {number: by_drop}, by_flow
 
-    def _wall_response(self, wall: Layer, index: int, drops: Array, flow: Array, samples: Array,
-                       values: dict[str, Array], slopes: Slopes, area: Array) -> tuple[Array, dict[str, Array]]:
-        first, by_seed = self._temperature_before(wall, drops, flow, samples, values)
-        seed = f"drop {index}"
-        values[wall.first_temperature] = first
-        values[wall.second_temperature] = first - drops[index]
-        slopes[wall.first_temperature] = by_seed
-        after = dict(by_seed)
-        after[seed] = after.get(seed, 0.0) - np.ones(len(samples))
-        slopes[wall.second_temperature] = after
-        self._run_wall(wall, values, slopes)
-        resistance = np.asarray(values[wall.resistance], dtype=float) / area
-        response = drops[index] / resistance
-        gathered = {name: -response * slope / (resistance * area)
-                    for name, slope in slopes.get(wall.resistance, {}).items()}
-        gathered[seed] = gathered.get(seed, 0.0) + 1.0 / resistance
-        return response, gathered
+    def _carried_by_wall(self, wall: Layer, number: int, drops: Array, flow: Array, samples: Array, area: Array,
+                         wants_slopes: bool) -> tuple[Array, dict[int, Array], Array]:
+        first, before, resistance_before = self._before(wall, drops, flow, samples)
+        plan = self._plan(wall.resistance, wall.steps, (wall.first_temperature, wall.second_temperature))
+        given = {wall.first_temperature: first, wall.second_temperature: first - drops[number]}
+        resistance, slopes = self._evaluated(plan, samples, given, wants_slopes)
+        total = drops[number] * area / resistance
+        if not wants_slopes:
+            return total, {}, total
+        zero = np.zeros(len(samples))
+        by_second = -total / resistance * slopes.get(wall.second_temperature, zero)
+        by_level = by_second - total / resistance * slopes.get(wall.first_temperature, zero)
+        by_drop = {earlier: -by_level for earlier in before}
+        by_drop[number] = area / resistance - by_second
+        return total, by_drop, -by_level * resistance_before
 
-    def _run_wall(self, wall: Layer, values: dict[str, Array], slopes: Slopes) -> None:
-        for step in wall.steps:
-            arguments = {local: values[bound] for local, bound in step.inputs.items()}
-            values[step.id] = step.operation.value(arguments)
-            carried = carry(step, arguments, values[step.id], slopes)
-            if carried:
-                slopes[step.id] = carried
+    def _before(self, wall: Layer, drops: Array, flow: Array, samples: Array) -> tuple[Array, list[int], Array]:
+        """Temperature on the inner side of a wall: the inner bulk less every drop before it.
 
-    def _temperature_before(self, wall: Layer, drops: Array, flow: Array, samples: Array, values: dict[str, Array]
-                            ) -> tuple[Array, dict[str, Array]]:
-        """Temperature on the inner side of an element: the inner bulk less every drop before it."""
-        temperature = np.broadcast_to(np.asarray(values[self.chain.inner.bulk], dtype=float), (len(samples),)).copy()
-        by_seed: dict[str, Array] = {}
+        Also the numbers of the moving elements before it, and the resistance of the others.
+        """
+        temperature = np.broadcast_to(np.asarray(self.at(self.chain.inner.bulk, samples), dtype=float), (len(samples),))
+        numbers: list[int] = []
+        resistance = np.zeros(len(samples))
         for element in self.chain.elements:
-            if element is wall:
+            if element.name == wall.name:
                 break
-            if element in self.moving:
-                place = self.moving.index(element)
-                temperature = temperature - drops[place]
-                by_seed[f"drop {place}"] = -np.ones(len(samples))
+            if element.name in self.numbers:
+                numbers.append(self.numbers[element.name])
+                temperature = temperature - drops[numbers[-1]]
             else:
-                resistance = self.fixed[element.name][samples]
-                temperature = temperature - flow * resistance
-                by_seed["Q"] = by_seed.get("Q", 0.0) - resistance
-        return temperature, by_seed
+                resistance = resistance + self.part(self.fixed[element.name], samples)
+        return temperature - flow * resistance, numbers, resistance
 
     # -- finishing ----------------------------------------------------------------------------------
 
-    def _finish(self) -> None:
-        """Evaluate everything once more at the answer, so that every step stands in the values."""
-        everything = np.arange(self.size)
+    def finish(self) -> None:
+        """Evaluate everything at the answer, so that every step stands in the values."""
+        if self.chain.has_temperatures:
+            self.values["solution/Q"] = self._as_input(self.flow)
         for group in (self.chain.inner, self.chain.outer):
             if self.chain.has_temperatures:
-                self._surface(group)
+                drop = self._drop(group)
+                self.values[group.surface_temperature] = self._as_input(self.full(group.bulk) + _outward(group) * drop)
+                self.values[group.flux] = self._as_input(np.abs(self.flow) / self.areas[group.name])
             for branch in group.branches:
-                coefficient, _ = self._film(group, branch, everything, self.values, self.slopes)
-                held = self.jump_sides.get(branch.name)
-                if held is not None:
-                    coefficient = np.where(self.jumps[branch.name], held[0], coefficient)
-                self.values[branch_coefficient(group, branch.name)] = self._as_input(coefficient)
-        if not self.chain.has_temperatures:
-            return
-        self.values["solution/Q"] = self._as_input(self.flow)
+                self._finish_film(group, branch)
         for element in self.moving:
             if isinstance(element, Layer):
-                first, _ = self._temperature_before(element, self.drops, self.flow, everything, self.values)
+                first, _, _ = self._before(element, self.drops, self.flow, self.everything)
                 self.values[element.first_temperature] = self._as_input(first)
-                self.values[element.second_temperature] = self._as_input(first - self.drops[self.moving.index(element)])
-                self._run_wall(element, self.values, self.slopes)
+                self.values[element.second_temperature] = self._as_input(first - self._drop(element))
+                run(element.steps, self.values)
 
-    def _surface(self, group: Group) -> None:
-        outward = -1.0 if group.side == "inside" else 1.0
-        if group in self.moving:
-            drop = self.drops[self.moving.index(group)]
+    def _drop(self, element: Group | Layer) -> Array:
+        if element.name in self.numbers:
+            return self.drops[self.numbers[element.name]]
+        return self.flow * self.fixed[element.name]
+
+    def _finish_film(self, group: Group, branch: Branch) -> None:
+        given = {name: self.values[name] for name in _moving(group) if name in self.values}
+        choice = self.choice(group, branch, self.everything, given)
+        if branch.name not in self.forced:
+            self.chosen[branch.name] = choice
+        self._stay(branch.choice_steps, _moving(group))
+        self._rerun(branch.choice_steps, group, self.values)
+        methods = np.unique(choice)
+        if len(methods) == 1:
+            candidate = self.forced.get(branch.name) or branch.candidates[int(methods[0])]
+            self._stay(candidate.steps, _moving(group))
+            self._rerun(candidate.steps, group, self.values)
+            coefficient = self.values[candidate.coefficient]
         else:
-            drop = self.flow * self.fixed[group.name]
-        area = self._full(self.chain.surfaces[group.surface].area)
-        self.values[group.surface_temperature] = self._as_input(self._full(group.bulk) + outward * drop)
-        self.values[group.flux] = self._as_input(np.abs(self.flow) / area)
+            coefficient = np.full(self.size, np.nan)
+            for method in methods:
+                candidate = branch.candidates[int(method)]
+                self._stay(candidate.steps, _moving(group))
+                self._finish_part(group, candidate, choice == method)
+                mask = choice == method
+                coefficient[mask] = np.broadcast_to(self.values[candidate.coefficient], (self.size,))[mask]
+        held = self.held_value.get(branch.name)
+        if held is not None:
+            coefficient = self._as_input(np.where(np.isfinite(held), held, coefficient))
+        self.values[branch_coefficient(group, branch.name)] = coefficient
+
+    def _rerun(self, steps: tuple[ChainStep, ...], group: Group, values: dict[str, Array]) -> None:
+        follows = set(_moving(group))
+        for step in steps:
+            if any(bound in follows for bound in step.inputs.values()):
+                follows.add(step.id)
+                run((step,), values)
+
+    def _finish_part(self, group: Group, candidate: Candidate, mask: Array) -> None:
+        """Evaluate a candidate for the samples that chose it; its own figures are NaN for the others."""
+        samples = np.flatnonzero(mask)
+        names = {bound for step in candidate.steps for bound in step.inputs.values()}
+        part = {name: self.at(name, samples) for name in names if name in self.values}
+        before = set(self.values)
+        self._rerun(candidate.steps, group, part)
+        for step in candidate.steps:
+            if step.id in before and step.id not in self.partial:
+                continue
+            value = np.asarray(part[step.id])
+            if step.id not in self.partial:
+                self.partial.add(step.id)
+                self.values[step.id] = (np.zeros(self.size, dtype=bool) if value.dtype == bool
+                                        else np.full(self.size, np.nan))
+            self.values[step.id][samples] = value
 
     def _as_input(self, value: Array) -> Array:
         """A figure of the solution as steps take it: 0-d for a single record."""
-        return value.reshape(()) if self.shape == () else value
-
-
-def _taken(values: Mapping[str, Array], mask: Array) -> dict[str, Array]:
-    return {name: value[mask] if isinstance(value, np.ndarray) and value.ndim else value for name, value in values.items()}
-
-
-def _taken_slopes(slopes: Slopes, mask: Array) -> Slopes:
-    return {name: {seed: slope[mask] if np.ndim(slope) else slope for seed, slope in by_seed.items()}
-            for name, by_seed in slopes.items()}
-
-
-def _put_back(values: dict[str, Array], before: Mapping[str, Array], part: Mapping[str, Array], mask: Array) -> None:
-    """Write figures that only some samples have into arrays of all samples; the others hold NaN."""
-    for name, value in part.items():
-        if name in before:
-            continue
-        if name not in values:
-            flag = np.asarray(value).dtype == bool
-            values[name] = np.zeros(mask.shape, dtype=bool) if flag else np.full(mask.shape, np.nan)
-        values[name][mask] = value
-
-
-def _solved(matrix: Array, right: Array) -> Array:
-    """Solutions of many small systems; NaN where a matrix is singular."""
-    try:
-        return np.linalg.solve(matrix, right[..., None])[..., 0]
-    except np.linalg.LinAlgError:
-        result = np.full(right.shape, np.nan)
-        for index in range(len(matrix)):
-            try:
-                result[index] = np.linalg.solve(matrix[index], right[index])
-            except np.linalg.LinAlgError:
-                continue
-        return result
+        return value.reshape(()) if self.single else value

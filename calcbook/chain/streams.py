@@ -122,7 +122,7 @@ def _tabulated(scope: Scope, text: FluidText) -> properties.Fluid:
     if not all(one and two for one, two in points):
         raise PropertyFault("astm-points", "the two points of the D341 viscosity cannot be read",
                             expected="[[40 degC, 46 mm^2/s], [100 degC, 6.8 mm^2/s]]")
-    columns["viscosity"] = ([one[0] for one, _ in points], [two[0] for _, two in points])
+    columns["kinematic viscosity"] = ([one[0] for one, _ in points], [two[0] for _, two in points])
     return properties.tabulated(columns, viscosity_law="astm d341", name=text.name)
 
 

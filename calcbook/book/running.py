@@ -1,0 +1,113 @@
+"""Run calculations: each to its record and results file, faults of all of them told together."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator, Sequence
+from dataclasses import dataclass
+
+from calcbook.book.finding import Found
+from calcbook.book.writing import write_whole
+from calcbook.faults import Fault, Faults, Place
+from calcbook.interface import NotConverged, solve_file
+
+RECORD, RESULTS = "record.md", "results.json"
+PARALLEL_FROM = 8
+
+
+@dataclass(frozen=True, slots=True)
+class Outcome:
+    """What became of one file: written, or its faults, or the case that did not converge."""
+
+    name: str
+    number: str = ""
+    revision: str = ""
+    u_clean: str = ""
+    u_service: str = ""
+    open_items: int = 0
+    faults: tuple[Fault, ...] = ()
+    not_converged: str = ""
+
+    @property
+    def is_written(self) -> bool:
+        return not self.faults and not self.not_converged
+
+
+def run_all(files: Sequence[Found], jobs: int, tell: Callable[[Outcome], None]) -> list[Outcome]:
+    """Run files in order, over ``jobs`` processes where there are many; ``tell`` is called as each ends.
+
+    Two calculations with one number are a fault of the later file, and it is not written.
+    """
+    taken: dict[str, str] = {}
+    outcomes = []
+    for solved in _solved(files, jobs):
+        outcome = solved if isinstance(solved, Outcome) else _written(solved, taken)
+        outcomes.append(outcome)
+        tell(outcome)
+    return outcomes
+
+
+@dataclass(frozen=True, slots=True)
+class _Texts:
+    """The texts of a solved calculation, as they come back from a worker."""
+
+    found: Found
+    outcome: Outcome
+    record: str
+    results: str
+
+
+def _solved(files: Sequence[Found], jobs: int) -> Iterator[Outcome | _Texts]:
+    if jobs == 1 or len(files) < PARALLEL_FROM:
+        yield from map(_texts, files)
+        return
+    import multiprocessing
+    from concurrent.futures import ProcessPoolExecutor
+
+    context = multiprocessing.get_context("spawn")
+    with ProcessPoolExecutor(max_workers=jobs, mp_context=context) as pool:
+        yield from pool.map(_texts, files, chunksize=max(1, min(16, len(files) // (4 * jobs))))
+
+
+def _texts(found: Found) -> Outcome | _Texts:
+    """Solve one file and make its texts; nothing is written yet."""
+    from calcbook.record import record_and_results
+
+    try:
+        solved = solve_file(found.path, found.name)
+    except Faults as faults:
+        return Outcome(found.name, faults=faults.faults)
+    except NotConverged as error:
+        return Outcome(found.name, not_converged=str(error))
+    record, results = record_and_results(solved)
+    calculation = solved.chain.calculation
+    from calcbook.record import conclusion
+
+    outcome = Outcome(
+        found.name,
+        calculation.number,
+        calculation.revision,
+        conclusion(solved, "U_clean"),
+        conclusion(solved, "U_service"),
+        len(solved.open_items),
+    )
+    return _Texts(found, outcome, record, results)
+
+
+def _written(texts: _Texts, taken: dict[str, str]) -> Outcome:
+    """Write the record and the results of one calculation, unless its number is taken."""
+    number = texts.outcome.number
+    first = taken.setdefault(number.casefold(), texts.found.name)
+    place = Place(texts.found.name)
+    if first != texts.found.name:
+        fault = Fault("number-in-two-files", place, f"the number {number} stands in two files", found=first,
+                      expected="each number once in a book")
+        return Outcome(texts.found.name, faults=(fault,))
+    folder = texts.found.output / number
+    try:
+        write_whole(folder / RECORD, texts.record)
+        write_whole(folder / RESULTS, texts.results)
+    except OSError as error:
+        fault = Fault("output-not-writable", place, f"the record of {number} cannot be written",
+                      found=error.strerror or "", expected="a folder that can be written")
+        return Outcome(texts.found.name, faults=(fault,))
+    return texts.outcome

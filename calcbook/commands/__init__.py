@@ -1,0 +1,38 @@
+"""The commands: one thin file each. They read the command line, call a room below, print, and exit.
+
+May import: every room. Must never: hold logic that another caller would want.
+
+Exit codes: 0 written, open items or not; 1 findings (``verify``); 2 fault or usage; 3 a calculation did
+not converge.
+"""
+
+from __future__ import annotations
+
+import importlib
+
+import click
+
+COMMANDS = ("run", "new", "library", "verify", "schema")
+
+
+class _Commands(click.Group):
+    """Loads a command's file when it is asked for, so that a run does not pay for the others."""
+
+    def list_commands(self, ctx: click.Context) -> list[str]:
+        return list(COMMANDS)
+
+    def get_command(self, ctx: click.Context, name: str) -> click.Command | None:
+        if name not in COMMANDS:
+            return None
+        command: click.Command = importlib.import_module(f"calcbook.commands.{name}").command
+        return command
+
+
+@click.group(cls=_Commands, context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100})
+@click.version_option(package_name="calcbook", message="calcbook %(version)s")
+def main() -> None:
+    """Run controlled calculations of overall heat-transfer coefficients.
+
+    An engineer writes a YAML calculation file; `calcbook run` writes its record, ready to be checked. Start
+    with `calcbook new inside-tube > calcs/first.yaml`, then `calcbook run calcs/first.yaml`.
+    """

@@ -1,0 +1,72 @@
+"""``calcbook library``: the cards as pages for a reader."""
+
+from __future__ import annotations
+
+import sys
+from pathlib import Path
+
+import click
+
+USAGE = 2
+
+
+@click.group("library", short_help="List and show situations, methods, materials, fluids, fault codes.")
+def command() -> None:
+    """List the library, or show one card as a page with its limits, accuracy, sources and check points."""
+
+
+def _library(cards: Path | None):  # type: ignore[no-untyped-def]
+    from calcbook.library import Library
+
+    return Library(cards)
+
+
+def _print(blocks) -> None:  # type: ignore[no-untyped-def]
+    from calcbook.record.markdown import markdown
+
+    click.echo(markdown(blocks), nl=False)
+
+
+@command.command("list")
+@click.option("--cards", type=click.Path(path_type=Path, exists=True, file_okay=False), metavar="DIR",
+              help="A book's own cards, listed with the others.")
+def list_cards(cards: Path | None) -> None:
+    """List every situation with its methods, and every material."""
+    from calcbook.record.library_pages import overview
+
+    _print(overview(_library(cards)))
+
+
+@command.command("show")
+@click.argument("name")
+@click.option("--cards", type=click.Path(path_type=Path, exists=True, file_okay=False), metavar="DIR",
+              help="A book's own cards, shown like the others.")
+def show(name: str, cards: Path | None) -> None:
+    """Show the page of the situation, method or material NAME."""
+    from calcbook.faults import nearest_names
+    from calcbook.record.library_pages import page
+
+    library = _library(cards)
+    blocks = page(library, name)
+    if blocks is None:
+        known = [*library.names("situations"), *library.names("methods"), *library.names("materials")]
+        near = ", ".join(nearest_names(name, known))
+        click.echo(f"the library has no card `{name}`" + (f"; nearest: {near}" if near else ""), err=True)
+        sys.exit(USAGE)
+    _print(blocks)
+
+
+@command.command("fluids")
+def fluids() -> None:
+    """List the fluids that a stream may name."""
+    from calcbook.record.library_pages import fluids_page
+
+    _print(fluids_page())
+
+
+@command.command("faults")
+def faults() -> None:
+    """List every fault code with its meaning."""
+    from calcbook.record.library_pages import faults_page
+
+    _print(faults_page())

@@ -1,0 +1,70 @@
+"""The digest of what was calculated: meaning of the file, cards used, results as they are displayed.
+
+SHA-256 of ``calcbook-digest-1``, a zero byte, and JSON (UTF-8, keys sorted, no spaces, no floats). Each of the
+three parts has its own digest beside the whole. Versions, platform and sign-offs stay outside.
+"""
+
+from __future__ import annotations
+
+import hashlib
+import json
+from dataclasses import dataclass
+
+from calcbook.chain.outcome import CaseOutcome, Solved, StepRow
+from calcbook.record.numbers import in_report_unit, unit_text, value_text
+
+MARK = b"calcbook-digest-1\0"
+RESULT_DIGITS = 5
+
+
+@dataclass(frozen=True, slots=True)
+class Digest:
+    """SHA-256 of the whole and of its three parts, in hexadecimal digits."""
+
+    whole: str
+    meaning: str
+    cards: str
+    results: str
+
+
+def digest_of(solved: Solved) -> Digest:
+    """The digest of a solved calculation."""
+    calculation = solved.chain.calculation
+    parts: dict[str, object] = {
+        "meaning": {"calculation": calculation.meaning, "settings": calculation.settings.plain},
+        "cards": dict(solved.cards),
+        "results": displayed(solved),
+    }
+    return Digest(_hash(parts), *(_hash(parts[name]) for name in ("meaning", "cards", "results")))
+
+
+def _hash(content: object) -> str:
+    text = json.dumps(content, ensure_ascii=False, sort_keys=True, separators=(",", ":"), default=_refused)
+    return hashlib.sha256(MARK + text.encode("utf-8", "surrogatepass")).hexdigest()
+
+
+def _refused(content: object) -> object:
+    raise TypeError(f"{type(content).__name__} has no place in a digest")
+
+
+def displayed(solved: Solved) -> dict[str, list[str]]:
+    """Every displayed figure by stable id, as text and unit; states of checks and criteria as words."""
+    shown: dict[str, list[str]] = {}
+    for case in solved.cases:
+        prefix = f"case {case.name} / " if case.name else ""
+        for row in _rows(case):
+            unit = unit_text(row.step.kind.unit) if row.step.kind is not None else "1"
+            for condition, value in (("clean", row.clean), ("service", row.service)):
+                shown[f"{prefix}step {row.step.id} / {condition}"] = [value_text(value, row.step.kind), unit]
+        for name, result in case.results.items():
+            text = in_report_unit(result.value, result.kind, solved.chain.calculation.report, RESULT_DIGITS)
+            shown[f"{prefix}result {name}"] = [text, ""]
+        for check in case.checks:
+            shown[f"{prefix}check {check.id} / {check.condition}"] = [f"{check.figure}; {check.limit}; {check.state}", ""]
+        for criterion in case.criteria:
+            shown[f"{prefix}{criterion.id}"] = ["criterion met" if criterion.met else "criterion not met", ""]
+    return shown
+
+
+def _rows(case: CaseOutcome) -> list[StepRow]:
+    return [*(row for term in case.chains for row in term.rows), *case.circuit]

@@ -1,0 +1,122 @@
+"""Blocks to Markdown. The only place that makes Markdown: every text is escaped here and nowhere else.
+
+The output is CommonMark with tables, without HTML. Read again by a CommonMark reader, every text is the one
+that was handed in, apart from what ``visible`` changes.
+"""
+
+from __future__ import annotations
+
+import re
+import unicodedata
+from collections.abc import Iterable
+
+from calcbook.record.blocks import Block, Bullets, Code, Heading, Paragraph, Quote, Table
+
+_LINE_ENDS = re.compile(r"\r\n|[\n\r\t\v\f\x1c\x1d\x1e\x85\u2028\u2029]")
+_HIDDEN = frozenset(("Cc", "Cf", "Cs"))
+_ALWAYS = frozenset("\\`*[~|")
+_LEADING = frozenset("#>+-=:")
+_LEADING_NUMBER = re.compile(r"(\d{1,9})([.)])(?=\s|$)")
+
+
+def markdown(blocks: Iterable[Block]) -> str:
+    """The Markdown text of blocks: LF, one empty line between blocks, one newline at the end."""
+    parts = [part for block in blocks for part in _parts(block)]
+    return "\n\n".join(parts) + "\n"
+
+
+def _parts(block: Block) -> list[str]:
+    """A block as pieces that stand apart by an empty line."""
+    match block:
+        case Heading(level=level, text=text):
+            return [f"{'#' * level} {escaped(text)}".rstrip()]
+        case Paragraph(text=text):
+            line = escaped(text)
+            return [line] if line else []
+        case Table():
+            return _table(block)
+        case Bullets(items=items):
+            return ["\n".join(f"- {escaped(item)}".rstrip() for item in items)] if items else []
+        case Quote(lines=lines):
+            return ["\n>\n".join(f"> {escaped(line)}".rstrip() for line in lines)] if lines else []
+        case Code(text=text):
+            return [_fenced(text)]
+    raise TypeError(f"{type(block).__name__} is no block")
+
+
+def _table(table: Table) -> list[str]:
+    lines = [_row(table.columns), "|" + "---|" * len(table.columns)]
+    lines += [_row(row) for row in table.rows]
+    notes = ["\n".join(f"- {escaped(note)}" for note in table.notes)] if table.notes else []
+    return ["\n".join(lines), *notes]
+
+
+def _row(cells: Iterable[str]) -> str:
+    return "|" + "".join(f" {text} |" if (text := escaped(cell)) else " |" for cell in cells)
+
+
+def _fenced(text: str) -> str:
+    """A fenced block whose fence is longer than any run of backticks inside."""
+    lines = [_characters(line) for line in text.replace("\r\n", "\n").split("\n")]
+    longest = max((len(run) for line in lines for run in re.findall("`+", line)), default=0)
+    fence = "`" * max(3, longest + 1)
+    return "\n".join([fence, *lines, fence])
+
+
+def visible(text: str) -> str:
+    """A text as one line: line ends and tabs are blanks, control and direction characters their number."""
+    return _characters(_LINE_ENDS.sub(" ", text)).strip()
+
+
+def _characters(text: str) -> str:
+    if text.isascii() and text.isprintable():
+        return text
+    return "".join(
+        f"U+{ord(character):04X}" if unicodedata.category(character) in _HIDDEN else character for character in text
+    )
+
+
+def escaped(text: str) -> str:
+    """One line of text that a Markdown reader reads back as that text and nothing else."""
+    line = visible(text)
+    if line.isalnum():
+        return line
+    marked = "".join(_escaped_character(line, place) for place in range(len(line)))
+    number = _LEADING_NUMBER.match(marked)
+    return f"{number[1]}\\{marked[number.end(1):]}" if number else marked
+
+
+def _escaped_character(line: str, place: int) -> str:
+    character = line[place]
+    following = line[place + 1 : place + 2]
+    first, last = place == 0, place == len(line) - 1
+    if character.isalnum() or character == " ":
+        return character
+    needed = (
+        character in _ALWAYS
+        or (first and character in _LEADING)
+        or (character == "#" and last)
+        or (character == "<" and not _opens_nothing(following))
+        or (character == "&" and (following == "#" or following.isalnum()))
+        or (character == "_" and not _inside_word(line, place))
+    )
+    return "\\" + character if needed else character
+
+
+def _opens_nothing(following: str) -> bool:
+    """Whether a `<` before this character can open neither a tag nor a link."""
+    return following in ("", " ", "=") or following.isdigit()
+
+
+def _inside_word(line: str, place: int) -> bool:
+    """Whether a run of underscores stands between letters or digits, where it marks no emphasis."""
+    before, after = place, place
+    while before > 0 and line[before - 1] == "_":
+        before -= 1
+    while after < len(line) - 1 and line[after + 1] == "_":
+        after += 1
+    return before > 0 and after < len(line) - 1 and _is_letter(line[before - 1]) and _is_letter(line[after + 1])
+
+
+def _is_letter(character: str) -> bool:
+    return unicodedata.category(character)[0] in "LN"

@@ -1,0 +1,91 @@
+"""What the sections of a record share: the solved calculation, its digest, and a few look-ups."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from dataclasses import dataclass
+
+from calcbook.calcfile import Calculation
+from calcbook.chain.outcome import CaseOutcome, CheckResult, Result, Solved
+from calcbook.chain.types import Chain
+from calcbook.library.cards import Material, Method, Situation, Source
+from calcbook.record.digest import Digest
+from calcbook.record.software import Software
+
+
+
+@dataclass(frozen=True)
+class Page:
+    """One record in the making."""
+
+    solved: Solved
+    digest: Digest
+    software: Software
+
+    @property
+    def chain(self) -> Chain:
+        return self.solved.chain
+
+    @property
+    def calculation(self) -> Calculation:
+        return self.solved.chain.calculation
+
+    @property
+    def base(self) -> CaseOutcome:
+        return self.solved.base
+
+    @property
+    def basis(self) -> str:
+        """The name of the surface that *the* U stands on."""
+        return self.chain.surfaces[self.chain.basis].name
+
+    @property
+    def is_preliminary(self) -> bool:
+        return bool(self.solved.open_items)
+
+    @property
+    def has_cases(self) -> bool:
+        return len(self.solved.cases) > 1
+
+    def result(self, name: str) -> Result | None:
+        """A result of the base case by name."""
+        return self.base.results.get(name)
+
+    def cards(self) -> tuple[Method | Situation | Material, ...]:
+        """The cards that the digest binds, in the order in which they were used."""
+        found: list[Method | Situation | Material] = []
+        for name in self.solved.cards:
+            kind, _, card = name.partition(" ")
+            if kind == "method":
+                found.append(self.chain.library.method(card))
+            elif kind == "situation":
+                found.append(self.chain.library.situation(card))
+            elif kind == "material":
+                found.append(self.chain.library.material(card))
+        return tuple(found)
+
+    def methods(self) -> tuple[Method, ...]:
+        """The method cards that were used."""
+        return tuple(card for card in self.cards() if isinstance(card, Method))
+
+    def every_check(self) -> Iterable[CheckResult]:
+        """The checks of every case."""
+        for case in self.solved.cases:
+            yield from case.checks
+
+
+def case_name(name: str) -> str:
+    """A case as it is printed; the base case has a name too."""
+    return name or "base"
+
+
+def counted(count: int, singular: str, plural: str) -> str:
+    """A number with its noun."""
+    return f"{count} {singular if count == 1 else plural}"
+
+
+def source_text(source: Source) -> str:
+    """A publication with what it supports and its standing."""
+    supports = f"; for {source.supports}" if source.supports else ""
+    standing = f"; standing: {source.standing}" if source.standing else ""
+    return f"{source.cite}{supports}{standing}"

@@ -1,0 +1,161 @@
+"""The results file: what the record shows, for programs. SI values with units beside, 10 significant digits."""
+
+from __future__ import annotations
+
+import json
+import math
+
+from calcbook.chain.outcome import CaseOutcome, CheckResult, CriterionResult, Solved, StepRow, TermRow
+from calcbook.chain.types import CONDITIONS, SERVICE, OpenItem
+from calcbook.formulas import Relation
+from calcbook.quantities import QuantityKind
+from calcbook.record.digest import Digest
+from calcbook.record.software import Software
+from calcbook.record.steps import StepTexts
+
+DIGITS = 10
+Data = dict[str, object]
+
+
+def results_text(solved: Solved, digest: Digest, software: Software) -> str:
+    """The text of the results file, one newline at the end."""
+    return json.dumps(results_data(solved, digest, software), indent=1, ensure_ascii=False, allow_nan=False) + "\n"
+
+
+def results_data(solved: Solved, digest: Digest, software: Software) -> Data:
+    """The results file as dictionaries and lists, in a stable order; figures that are not known are None."""
+    calculation = solved.chain.calculation
+    base = solved.base
+    return {
+        "calculation": {"number": calculation.number, "title": calculation.title, "revision": calculation.revision},
+        "digest": {"meaning": digest.meaning, "cards": digest.cards, "results": digest.results},
+        "software": {"calcbook": software.calcbook, "CoolProp": software.coolprop, "library": software.library},
+        "results": _results(base),
+        "conditions": {condition: [_term(row) for row in base.terms[condition]] for condition in CONDITIONS},
+        "steps": _steps(solved),
+        "checks": [_check(check) for check in base.checks],
+        "acceptance": [_criterion(item) for case in solved.cases for item in case.criteria],
+        "assumptions": _assumptions(solved),
+        "open_items": [_open_item(item) for item in solved.open_items],
+        "cases": {case.name: _case(case) for case in solved.cases[1:]},
+    }
+
+
+def rounded(value: object) -> object:
+    """A figure with 10 significant digits, a flag as it is, None for what is not known."""
+    if isinstance(value, bool):
+        return value
+    number = float(value)  # type: ignore[arg-type]
+    return float(f"{number:.{DIGITS}g}") if math.isfinite(number) else None
+
+
+def _figure(value: float, kind: QuantityKind) -> Data:
+    return {"value": rounded(value), "unit": kind.unit}
+
+
+def _results(case: CaseOutcome) -> Data:
+    found: Data = {name: _figure(result.value, result.kind) for name, result in case.results.items()}
+    found["controlling"] = {"value": case.controlling or None, "share": rounded(case.controlling_share), "unit": "1"}
+    return found
+
+
+def _term(row: TermRow) -> Data:
+    return {
+        "name": row.name,
+        "kind": row.kind,
+        "surface": row.surface,
+        "own_resistance": rounded(row.own_resistance),
+        "resistance": rounded(row.resistance),
+        "share": rounded(row.share),
+        "coefficient": rounded(row.coefficient),
+        "T_inner": rounded(row.inner_temperature),
+        "T_outer": rounded(row.outer_temperature),
+        "method": row.methods,
+        "branches": [
+            {"name": branch.name, "kind": branch.kind, "coefficient": rounded(branch.coefficient),
+             "reference_temperature": rounded(branch.reference_temperature), "heat_flow": rounded(branch.heat_flow)}
+            for branch in row.branches
+        ],
+    }
+
+
+def _steps(solved: Solved) -> list[Data]:
+    """One entry per step and condition, service first."""
+    texts = StepTexts(solved.chain, solved.base, solved.cards)
+    found = []
+    terms = [(term.name, row) for term in solved.base.chains for row in term.rows]
+    terms += [("circuit", row) for row in solved.base.circuit]
+    for term, row in terms:
+        for condition in reversed(CONDITIONS):
+            found.append({
+                "id": row.step.id,
+                "symbol": row.step.symbol,
+                "relation": _relation(row, texts),
+                "value": rounded(row.service if condition == SERVICE else row.clean),
+                "unit": row.step.kind.unit if row.step.kind is not None else "1",
+                "condition": condition,
+                "term": term,
+            })
+    return found
+
+
+def _relation(row: StepRow, texts: StepTexts) -> str:
+    relation = getattr(row.step.operation, "relation", None)
+    return relation.text if isinstance(relation, Relation) else texts.relation(row.step)
+
+
+def _check(check: CheckResult) -> Data:
+    return {
+        "id": check.id,
+        "condition": check.condition,
+        "case": check.case,
+        "that": check.that,
+        "value": rounded(check.value),
+        "unit": check.unit,
+        "limit": check.limit,
+        "level": check.level,
+        "state": check.state,
+        "because": check.because,
+        "accepted": check.accepted,
+    }
+
+
+def _criterion(item: CriterionResult) -> Data:
+    return {
+        "id": item.id,
+        "case": item.case,
+        "that": item.that,
+        "value": rounded(item.value),
+        "limit": rounded(item.limit),
+        "unit": item.kind.unit,
+        "met": item.met,
+        "margin": rounded(item.margin),
+        "source": item.source,
+    }
+
+
+def _assumptions(solved: Solved) -> list[Data]:
+    """The engineer's assumptions, then those that the runner made."""
+    engineer: list[Data] = [
+        {"id": item.id, "text": item.text, "basis": item.basis, "verified": item.is_verified, "by": item.verified_by,
+         "used_in": []}
+        for item in solved.chain.calculation.assumptions
+    ]
+    runner: list[Data] = [
+        {"id": item.id, "text": item.text, "basis": item.decided_by, "verified": None, "by": "runner",
+         "used_in": [item.acts_on]}
+        for item in solved.base.assumptions
+    ]
+    return engineer + runner
+
+
+def _open_item(item: OpenItem) -> Data:
+    return {"id": item.id, "kind": item.kind, "text": item.text}
+
+
+def _case(case: CaseOutcome) -> Data:
+    return {
+        "results": _results(case),
+        "checks": [_check(check) for check in case.checks],
+        "open_items": [_open_item(item) for item in case.open_items],
+    }

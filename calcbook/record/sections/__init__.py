@@ -1,0 +1,1 @@
+"""The sections of a record, in order; each is a function from a ``Page`` to blocks."""

@@ -1,0 +1,68 @@
+"""References, sign-off block, revision history, closing line."""
+
+from __future__ import annotations
+
+from calcbook.formulas.names import written_name
+from calcbook.record.blocks import Block, Heading, Paragraph, Table
+from calcbook.record.page import Page, source_text
+
+
+def references(page: Page) -> list[Block]:
+    """Publications of the cards used, numbered; then the documents that the figures come from."""
+    return [Heading(2, "15. References"), *_publications(page), *_documents(page)]
+
+
+def _publications(page: Page) -> list[Block]:
+    used: dict[str, list[str]] = {}
+    for card in page.cards():
+        for source in card.sources:
+            used.setdefault(source_text(source), []).append(card.id)
+    if not used:
+        return [Paragraph("No card with a publication is used.")]
+    rows = tuple((str(place), text, ", ".join(dict.fromkeys(cards))) for place, (text, cards) in enumerate(used.items(), 1))
+    return [Heading(3, "Publications"), Table(("No", "Publication, what it supports, standing", "Card"), rows)]
+
+
+def _documents(page: Page) -> list[Block]:
+    """Every source text of the file once, with what comes from it."""
+    found: dict[str, list[str]] = {}
+    for item in page.chain.inputs.values():
+        name = written_name(item.symbol) if item.is_given else item.title
+        found.setdefault(item.source, []).append(name)
+    for case, changes in page.calculation.cases.items():
+        for symbol, given in changes.items():
+            found.setdefault(given.source, []).append(f"{written_name(symbol)} in case {case}")
+    for state in page.chain.streams.values():
+        if state.fluid.text.source:
+            found.setdefault(state.fluid.text.source, []).append(f"properties of {state.fluid.text.name}")
+    for criterion in page.calculation.acceptance:
+        found.setdefault(criterion.source, []).append(criterion.text)
+    rows = tuple((source, "; ".join(names)) for source, names in found.items() if source)
+    if not rows:
+        return []
+    return [Heading(3, "Documents"), Table(("Document", "What comes from it"), rows)]
+
+
+def sign_off(page: Page) -> list[Block]:
+    """One row per role; nothing is signed in a record."""
+    rows = tuple((role, "not signed", "", "", "") for role in page.calculation.settings.roles)
+    words = ("A sign-off stands in a file beside the calculation and names the digest of section 1; any change of meaning,"
+             " cards or displayed results voids it. The program shows that names differ and that content is unchanged; it"
+             " shows neither identity nor competence.")
+    return [Heading(2, "16. Sign-off"), Paragraph(words), Table(("Role", "State", "Name", "Date", "Digest"), rows)]
+
+
+def revision_history(page: Page) -> list[Block]:
+    """The revisions as the file lists them."""
+    rows = tuple((item.revision, item.date, item.reason) for item in page.calculation.revisions)
+    heading = Heading(2, "17. Revision history")
+    if not rows:
+        return [heading, Paragraph("The file lists no revision.")]
+    return [heading, Table(("Revision", "Date", "Reason"), rows)]
+
+
+def closing_line(page: Page) -> list[Block]:
+    """The line by which a reader sees that the record is whole."""
+    calculation = page.calculation
+    return [Heading(2, "18. End"),
+            Paragraph(f"End of calculation {calculation.number}, revision {calculation.revision}.")]

@@ -1,0 +1,176 @@
+"""Title block, result in brief, changes, purpose."""
+
+from __future__ import annotations
+
+from calcbook.chain.outcome import CaseOutcome, CriterionResult
+from calcbook.record.blocks import Block, Heading, Paragraph, Table
+from calcbook.record.numbers import (
+    CONCLUSION_DIGITS,
+    PLAIN_DIGITS,
+    apart,
+    in_report_unit,
+    number,
+    percent,
+    report_unit,
+    unit_text,
+    with_unit,
+)
+from calcbook.record.page import Page, case_name, counted
+
+LIFECYCLE = "in preparation"
+
+
+def confirmation(page: Page) -> str:
+    """Preliminary while any open item exists, else confirmed."""
+    return "preliminary" if page.is_preliminary else "confirmed"
+
+
+def title_block(page: Page) -> list[Block]:
+    """What the calculation is, who signs it, what it was made with."""
+    calculation = page.calculation
+    rows = [
+        ("Number", calculation.number),
+        ("Title", calculation.title),
+        ("Plant", calculation.plant),
+        ("Book", calculation.settings.name or "no book"),
+        ("Revision", calculation.revision),
+        ("State", LIFECYCLE),
+        ("Confirmation", _confirmation_words(page)),
+        ("Prepared", f"{calculation.prepared_by}, {calculation.date}; not signed"),
+        *((role.capitalize(), "not signed") for role in calculation.settings.roles if role != "prepared"),
+        ("Digest", page.digest.whole),
+        ("Digest of the file's meaning", page.digest.meaning),
+        ("Digest of the cards used", page.digest.cards),
+        ("Digest of the displayed results", page.digest.results),
+        ("Software", f"calcbook {page.software.calcbook}"),
+        ("Property backend", f"CoolProp {page.software.coolprop}"),
+    ]
+    return [
+        Heading(1, f"Calculation {calculation.number}, revision {calculation.revision}"),
+        Heading(2, "1. Title block"),
+        Table(("Item", "Entry"), tuple(rows)),
+    ]
+
+
+def _confirmation_words(page: Page) -> str:
+    items = len(page.solved.open_items)
+    if not items:
+        return confirmation(page)
+    return f"{confirmation(page)}: {counted(items, 'open item', 'open items')}, listed in section 2"
+
+
+# --- result in brief --------------------------------------------------------------------------------
+
+
+def brief(page: Page) -> list[Block]:
+    """The conclusion: U, cleanliness, excess surface, what controls, criteria, open items."""
+    return [
+        Heading(2, "2. Result in brief"),
+        Table(("Result", "Value", "Formula or basis"), tuple(_brief_rows(page))),
+        *_criteria(page),
+        *_governing(page),
+        *open_items(page),
+    ]
+
+
+def _brief_rows(page: Page) -> list[tuple[str, str, str]]:
+    basis = f"on the surface {page.basis}, the basis of U"
+    rows = []
+    for condition in ("service", "clean"):
+        result = page.result(f"U_{condition}")
+        if result is not None:
+            value = in_report_unit(result.value, result.kind, page.calculation.report, CONCLUSION_DIGITS)
+            words = "with the fouling terms" if condition == "service" else "without the fouling terms"
+            rows.append(("U in service" if condition == "service" else "U clean", value, f"{basis}; {words}"))
+    cleanliness, excess = page.result("cleanliness"), page.result("excess_surface")
+    if cleanliness is not None:
+        rows.append(("Cleanliness", number(cleanliness.value, CONCLUSION_DIGITS), "U_service/U_clean"))
+    if excess is not None:
+        rows.append(("Excess surface for fouling", percent(excess.value), "U_clean/U_service − 1"))
+    for name, title in (("heat_flow_service", "Heat flow in service, inside to outside"),
+                        ("heat_flow_clean", "Heat flow clean, inside to outside")):
+        result = page.result(name)
+        if result is not None:
+            suffix = " (for 1 m of length)" if page.chain.per_metre else ""
+            rows.append((title + suffix, in_report_unit(result.value, result.kind, page.calculation.report,
+                                                        CONCLUSION_DIGITS), "U·A times the difference of the bulk temperatures"))
+    rows.append(("Controlling term in service", *_controlling(page.base)))
+    return rows
+
+
+def _controlling(case: CaseOutcome) -> tuple[str, str]:
+    share = percent(case.controlling_share)
+    if case.controlling:
+        return f"{case.controlling}, {share}", "share of the total resistance, at least 50 %"
+    return "no single controlling resistance", f"the largest share is {share}, below 50 %"
+
+
+def _criteria(page: Page) -> list[Block]:
+    items = [item for case in page.solved.cases for item in case.criteria]
+    if not items:
+        return [Paragraph("No acceptance criterion is stated: the result is for information.")]
+    rows = tuple(criterion_row(item, page) for item in items)
+    return [Table(("Criterion", "Case", "Stated", "Value", "Limit", "Margin", "Verdict", "Source"), rows)]
+
+
+def criterion_row(item: CriterionResult, page: Page) -> tuple[str, ...]:
+    """A criterion with the figures that show its verdict."""
+    unit = report_unit(item.kind, page.calculation.report)
+    point = item.kind.scale == "point"
+    value, limit = apart(item.value, item.limit, unit, point, PLAIN_DIGITS)
+    verdict = "criterion met" if item.met else "criterion not met"
+    shown = unit_text(unit)
+    return (item.id, case_name(item.case), item.that, with_unit(value, shown), with_unit(limit, shown),
+            _margin(item, page), verdict, item.source or "no source")
+
+
+def _margin(item: CriterionResult, page: Page) -> str:
+    """The margin in the unit of the report; that of a temperature is a difference."""
+    if item.kind.scale == "point":
+        return with_unit(number(item.margin, CONCLUSION_DIGITS), unit_text(item.kind.unit))
+    margin = in_report_unit(item.margin, item.kind, page.calculation.report, CONCLUSION_DIGITS)
+    relative = f" ({percent(item.margin / abs(item.limit))} of the limit)" if item.limit else ""
+    return margin + relative
+
+
+def _governing(page: Page) -> list[Block]:
+    if not page.has_cases:
+        return []
+    governing = page.solved.governing
+    case = next(case for case in page.solved.cases if case_name(case.name) == governing)
+    criterion = page.calculation.acceptance[0] if page.calculation.acceptance else None
+    rule = f"smallest margin of {criterion.text}" if criterion is not None else "lowest U in service"
+    result = case.results["U_service"]
+    value = in_report_unit(result.value, result.kind, page.calculation.report, CONCLUSION_DIGITS)
+    return [Paragraph(f"Governing case: {governing} ({rule}), U in service {value}.")]
+
+
+def open_items(page: Page) -> list[Block]:
+    """Every open item, counted, with its kind; or the words that there are none."""
+    items = page.solved.open_items
+    heading = Heading(3, "Open items")
+    if not items:
+        return [heading, Paragraph("No open items.")]
+    rows = tuple((item.kind, item.id, item.text) for item in items)
+    words = counted(len(items), "open item", "open items")
+    return [
+        heading,
+        Paragraph(f"{words}. The calculation is preliminary until each is closed or accepted in the file."),
+        Table(("Kind", "Id", "Open item"), rows),
+    ]
+
+
+# --- changes and purpose ----------------------------------------------------------------------------
+
+
+def changes(page: Page) -> list[Block]:
+    """What moved since the last issued revision."""
+    return [
+        Heading(2, "3. Changes since the last issued revision"),
+        Paragraph("No revision of this calculation is issued yet. The reasons of each revision are in section 17."),
+    ]
+
+
+def purpose(page: Page) -> list[Block]:
+    """What the calculation is for."""
+    return [Heading(2, "4. Purpose"), Paragraph(page.calculation.purpose or "No purpose is stated.")]

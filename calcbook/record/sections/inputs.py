@@ -1,0 +1,127 @@
+"""Givens, assumptions, properties."""
+
+from __future__ import annotations
+
+from calcbook.calcfile.calculation import Assumption, Given
+from calcbook.chain.outcome import PropertyRow
+from calcbook.chain.types import Input
+from calcbook.formulas.names import written_name
+from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Table
+from calcbook.record.numbers import AS_GIVEN_DIGITS, NOT_USED, celsius, number, unit_text, with_unit
+from calcbook.record.page import Page
+
+PROPERTY_COLUMNS = (
+    ("density", "ρ, kg/m³", 5),
+    ("viscosity", "μ, Pa·s", 5),
+    ("conductivity", "λ, W/(m·K)", 5),
+    ("heat capacity", "cp, J/(kg·K)", 5),
+    ("expansion coefficient", "β, 1/K", 5),
+)
+PASCALS_OF_BAR = 1e5
+
+
+def givens(page: Page) -> list[Block]:
+    """Every figure of the file: givens, and figures stated where they are used."""
+    blocks: list[Block] = [Heading(2, "5. Givens")]
+    columns = ("Symbol", "Meaning", "Value as written", "Value in SI", "Tolerance", "Source", "Used in")
+    rows = tuple(_given_row(given, page) for given in page.calculation.givens.values())
+    blocks.append(Table(columns, rows) if rows else Paragraph("The file has no givens."))
+    literals = [item for item in page.chain.inputs.values() if not item.is_given]
+    if literals:
+        blocks.append(Heading(3, "Figures stated where they are used"))
+        blocks.append(Table(("Figure", "Value as written", "Value in SI", "Source"),
+                            tuple(_literal_row(item) for item in literals)))
+    return blocks
+
+
+def _given_row(given: Given, page: Page) -> tuple[str, ...]:
+    item = page.chain.inputs[f"given/{given.symbol}"]
+    symbol = written_name(given.symbol)
+    shown = symbol if symbol == given.symbol else f"{symbol} (in the file {given.symbol})"
+    used = page.chain.used_in.get(given.symbol, ())
+    return (shown, given.meaning or "no meaning stated", given.value.text, si_text(item), _tolerance(given),
+            given.source or "no source", "; ".join(used) or "nothing uses it")
+
+
+def _literal_row(item: Input) -> tuple[str, ...]:
+    return (item.title, item.text, si_text(item), item.source or "no source")
+
+
+def si_text(item: Input) -> str:
+    """A figure in SI with its unit, every digit that it was given with."""
+    return with_unit(number(item.value, AS_GIVEN_DIGITS), unit_text(item.kind.unit))
+
+
+def _tolerance(given: Given) -> str:
+    tolerance = given.tolerance
+    if tolerance is None:
+        return "none stated"
+    if tolerance.kind == "standard":
+        return f"standard {tolerance.text}"
+    if tolerance.kind == "expanded":
+        return f"expanded {tolerance.text}, k = {number(tolerance.factor)}"
+    return f"± {tolerance.text}"
+
+
+# --- assumptions ------------------------------------------------------------------------------------
+
+
+def assumptions(page: Page) -> list[Block]:
+    """The engineer's assumptions, the runner's, and what each card takes as true."""
+    return [
+        Heading(2, "6. Assumptions and properties"),
+        Heading(3, "Assumptions of the engineer"),
+        *_engineer(page),
+        Heading(3, "Assumptions made by the runner"),
+        *_runner(page),
+        Heading(3, "Assumptions of the situations and methods"),
+        *_cards(page),
+        Heading(3, "Properties"),
+        *_properties(page),
+    ]
+
+
+def _engineer(page: Page) -> list[Block]:
+    rows = tuple((item.id, item.text, item.basis, verification(item)) for item in page.calculation.assumptions)
+    if not rows:
+        return [Paragraph("The engineer states no assumption.")]
+    return [Table(("Id", "Assumption", "Basis", "Verification"), rows)]
+
+
+def verification(item: Assumption) -> str:
+    """Whether an assumption is verified, by whom and by what evidence."""
+    if not item.is_verified:
+        return "not verified"
+    return f"verified by {item.verified_by}, {item.verified_on}: {item.evidence}"
+
+
+def _runner(page: Page) -> list[Block]:
+    rows = tuple((item.id, item.text, item.decided_by, item.acts_on) for item in page.base.assumptions)
+    if not rows:
+        return [Paragraph("The runner decided nothing by itself.")]
+    return [Table(("Id", "Assumption", "Decided by", "Acts on"), rows)]
+
+
+def _cards(page: Page) -> list[Block]:
+    items = tuple(f"{card.id}: {sentence}" for card in page.cards() for sentence in getattr(card, "assumes", ()))
+    return [Bullets(items)] if items else [Paragraph("The cards used state no assumption.")]
+
+
+# --- properties -------------------------------------------------------------------------------------
+
+
+def _properties(page: Page) -> list[Block]:
+    rows = page.base.properties
+    if not rows:
+        return [Paragraph("No property of a fluid is used.")]
+    asked = [column for column in PROPERTY_COLUMNS if any(column[0] in row.values for row in rows)]
+    columns = ("Stream", "Place", "Condition", "T, °C", "T, K", "p, bar", "Phase", *(title for _, title, _ in asked),
+               "Provider")
+    return [Table(columns, tuple(_property_row(row, asked) for row in rows))]
+
+
+def _property_row(row: PropertyRow, asked: list[tuple[str, str, int]]) -> tuple[str, ...]:
+    pressure = number(row.pressure / PASCALS_OF_BAR) if row.pressure == row.pressure else "saturated"
+    values = (number(row.values[name], digits) if name in row.values else NOT_USED for name, _, digits in asked)
+    return (row.stream, row.place, row.condition or "clean and service", celsius(row.temperature),
+            number(row.temperature), pressure, row.phase, *values, row.provider)

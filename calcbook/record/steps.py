@@ -1,0 +1,284 @@
+"""One row of the chain as texts: relation, values put in, clean, service, unit, basis.
+
+A line with values re-evaluates to the printed value: the operands carry as many digits as that takes.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+from calcbook.chain.circuit import branch_coefficient
+from calcbook.chain.fluids import LiquidOperation, PropertyOperation
+from calcbook.chain.outcome import CaseOutcome, StepRow
+from calcbook.chain.solve import Solution
+from calcbook.chain.types import CLEAN, CONDITIONS, SERVICE, Chain, ChainStep, Group, Layer
+from calcbook.formulas import Compare, Node, Relation, evaluate, number_text, parse_expression, write, write_with_values
+from calcbook.formulas.names import written_name
+from calcbook.library.operations import LookupOperation, RelationOperation, SolveOperation, SumOperation
+from calcbook.library.reading import vocabulary
+from calcbook.quantities import QuantityKind
+from calcbook.record.numbers import NOT_USED, PLAIN_DIGITS, celsius, number, plain, unit_text, value_text
+
+Values = Mapping[str, object]
+PASCALS_OF_BAR = 1e5
+
+
+@dataclass(frozen=True, slots=True)
+class ChainLine:
+    """The texts of one row; ``clean_values`` are the clean values put in."""
+
+    quantity: str
+    relation: str
+    values: str
+    clean: str
+    service: str
+    unit: str
+    basis: str
+    clean_values: str
+
+    @property
+    def cells(self) -> tuple[str, ...]:
+        return (self.quantity, self.relation, self.values, self.clean, self.service, self.unit, self.basis)
+
+    @property
+    def differs(self) -> bool:
+        return self.clean not in (self.service, NOT_USED)
+
+
+class StepTexts:
+    """The texts of steps of one case."""
+
+    def __init__(self, chain: Chain, case: CaseOutcome, cards: Mapping[str, str]):
+        self.chain = chain
+        self.case = case
+        self.methods = frozenset(name.removeprefix("method ") for name in cards if name.startswith("method "))
+        self.steps = {row.step.id: row.step for term in case.chains for row in term.rows}
+        self.steps |= {row.step.id: row.step for row in case.circuit}
+        self.closing = _closing_relations(chain)
+
+    # -- rows ---------------------------------------------------------------------------------------
+
+    def line(self, row: StepRow) -> ChainLine:
+        """The texts of one row of the chain."""
+        step = row.step
+        kind = step.kind
+        values = {condition: self._values(step, condition, value)
+                  for condition, value in ((CLEAN, row.clean), (SERVICE, row.service))}
+        return ChainLine(
+            quantity=_quantity(step.title, step.symbol),
+            relation=self.relation(step),
+            values=values[SERVICE],
+            clean=value_text(row.clean, kind),
+            service=value_text(row.service, kind),
+            unit=unit_text(kind.unit) if kind is not None else "1",
+            basis=self._basis(step, row),
+            clean_values=values[CLEAN],
+        )
+
+    def closing_line(self, name: str) -> ChainLine:
+        """The row of a figure that the solution gives: a surface temperature or a heat flux."""
+        closing = self.closing[name]
+        kind = closing.kind
+        texts, values = {}, {}
+        for condition in CONDITIONS:
+            solution = self.case.solutions[condition]
+            texts[condition] = value_text(solution.number(name), kind)
+            arguments = {symbol: solution.values[bound] for symbol, bound in closing.inputs.items()}
+            values[condition] = write_with_values(closing.relation, arguments, texts[condition])
+        return ChainLine(
+            quantity=_quantity(closing.title, closing.symbol),
+            relation=write(closing.relation),
+            values=values[SERVICE],
+            clean=texts[CLEAN],
+            service=texts[SERVICE],
+            unit=unit_text(kind.unit),
+            basis="closed with the circuit" + self._celsius(kind, *(self.case.solutions[condition].number(name)
+                                                                    for condition in CONDITIONS)),
+            clean_values=values[CLEAN],
+        )
+
+    # -- relation -----------------------------------------------------------------------------------
+
+    def relation(self, step: ChainStep) -> str:
+        """The relation of a step in the trade's signs, or the words for what is no relation."""
+        operation = step.operation
+        if isinstance(operation, RelationOperation):
+            return write(operation.relation, self._names(step))
+        if isinstance(operation, LookupOperation):
+            return f"table {operation.table.name}, column {operation.column}"
+        if isinstance(operation, SolveOperation):
+            low, high = operation.line.between
+            return (f"root {written_name(operation.line.symbol)} of {write(operation.line.equation)},"
+                    f" between {number(low)} and {number(high)}")
+        if isinstance(operation, SumOperation):
+            line = operation.line
+            return f"sum of {write(line.of)} for {line.over} = 0 to {line.terms - 1}"
+        if isinstance(operation, PropertyOperation):
+            return "property"
+        if isinstance(operation, LiquidOperation):
+            return "phase of the fluid"
+        raise TypeError(f"{type(operation).__name__} has no printed form")
+
+    def _names(self, step: ChainStep) -> dict[str, str]:
+        """Written names of symbols: a method keeps its own; elsewhere the symbol of the figure that stands there."""
+        if step.basis in self.methods:
+            return {}
+        names = {}
+        for local, bound in step.inputs.items():
+            symbol = self._symbol(bound)
+            names[local] = written_name(symbol) if symbol else written_name(local)
+        if len(set(names.values())) < len(names):
+            return {}
+        return {local: name for local, name in names.items() if "." not in local}
+
+    def _symbol(self, name: str) -> str:
+        """The symbol of a figure by id, empty where it has none of its own."""
+        if name in self.steps:
+            return self.steps[name].symbol
+        item = self.chain.inputs.get(name)
+        return item.symbol if item is not None and item.is_given else ""
+
+    # -- values -------------------------------------------------------------------------------------
+
+    def _values(self, step: ChainStep, condition: str, value: float | bool) -> str:
+        solution = self.case.solutions[condition]
+        if math.isnan(plain(value)) or any(bound not in solution.values for bound in step.inputs.values()):
+            return NOT_USED
+        arguments = {local: solution.values[bound] for local, bound in step.inputs.items()}
+        operation = step.operation
+        if isinstance(operation, RelationOperation):
+            flag = isinstance(value, bool)
+            return write_with_values(operation.relation, arguments, None if flag else value_text(value, step.kind))
+        if isinstance(operation, LookupOperation):
+            found = ", ".join(f"{written_name(symbol)} = {number(plain(arguments[symbol]))}"  # type: ignore[arg-type]
+                              for symbol in operation.symbols)
+            return f"table {operation.table.name}: row for {found}"
+        if isinstance(operation, SolveOperation):
+            return _both_sides(operation, arguments, plain(value))
+        if isinstance(operation, SumOperation):
+            found = ", ".join(f"{written_name(symbol)} = {number(plain(arguments[symbol]), 10)}"  # type: ignore[arg-type]
+                              for symbol in operation.symbols)
+            return f"{operation.line.terms} terms with {found}"
+        if isinstance(operation, PropertyOperation | LiquidOperation):
+            return self._state(step, operation, solution, condition)
+        raise TypeError(f"{type(operation).__name__} has no printed form")
+
+    def _state(self, step: ChainStep, operation: PropertyOperation | LiquidOperation, solution: Solution,
+               condition: str) -> str:
+        """Fluid, temperature, pressure, fraction and phase at which a property is taken."""
+        asked = operation.operation if isinstance(operation, LiquidOperation) else operation
+        temperature = solution.number(step.inputs["T"])
+        parts = [asked.source.text.name, f"{number(temperature, 5)} K ({celsius(temperature)} °C)"]
+        if "w" in step.inputs:
+            basis = asked.source.text.basis or "mass fraction"
+            parts.append(f"{basis} {number(solution.number(step.inputs['w']), 4)}")
+        if "p" in step.inputs:
+            parts.append(f"{number(solution.number(step.inputs['p']) / PASCALS_OF_BAR, 5)} bar")
+        phase = asked.phase or self._phase(step, temperature, condition)
+        return ", ".join([*parts, *([phase] if phase else [])])
+
+    def _phase(self, step: ChainStep, temperature: float, condition: str) -> str:
+        """The phase that the properties table states for this step's state."""
+        for row in self.case.properties:
+            owner = f"stream {row.stream}/"
+            fits = step.id.startswith(owner) if row.place == "bulk" else f"/{row.place}/" in step.id
+            if fits and row.condition in ("", condition) and row.temperature == temperature:
+                return row.phase
+        return ""
+
+    # -- basis --------------------------------------------------------------------------------------
+
+    def _basis(self, step: ChainStep, row: StepRow) -> str:
+        basis = step.basis
+        if step.basis in self.methods:
+            others = [f"{written_name(local)} is {written_name(symbol)}" for local, bound in step.inputs.items()
+                      if (symbol := self._symbol(bound)) and symbol != local and "." not in local]
+            basis = "; ".join([step.basis, *others])
+        return basis + self._celsius(step.kind, row.clean, row.service)
+
+    def _celsius(self, kind: QuantityKind | None, clean: float | bool, service: float | bool) -> str:
+        """A temperature on the Celsius scale beside its row in kelvin."""
+        if kind is None or kind.scale != "point":
+            return ""
+        texts = [celsius(plain(value)) for value in (clean, service)]
+        if texts[0] == texts[1]:
+            return f"; {texts[0]} °C"
+        return f"; clean {texts[0]} °C, service {texts[1]} °C"
+
+
+def _quantity(title: str, symbol: str) -> str:
+    written = written_name(symbol)
+    return written if title in ("", symbol) else f"{title} {written}"
+
+
+def _both_sides(operation: SolveOperation, arguments: Values, root: float) -> str:
+    """The equation with the root put in: both sides give the same figure."""
+    equation = operation.line.equation.tree
+    assert isinstance(equation, Compare)
+    known = {**arguments, operation.line.symbol: root}
+    return " = ".join(_side(side, known) for side in (equation.first, equation.rest[0][1]))
+
+
+def _side(side: Node, known: Values) -> str:
+    value = float(evaluate(side, known))
+    return write_with_values(side, {name: known[name] for name in side.symbols}, number_text(value, PLAIN_DIGITS))
+
+
+# --- figures that the solution closes ----------------------------------------------------------------
+
+
+@dataclass(frozen=True, slots=True)
+class _Closing:
+    """A figure of the solution, and the relation of the circuit that it satisfies."""
+
+    symbol: str
+    title: str
+    kind: QuantityKind
+    relation: Relation
+    inputs: Mapping[str, str]
+
+
+def _closing_relations(chain: Chain) -> dict[str, _Closing]:
+    """Surface temperatures, wall temperatures and fluxes by id, with what each follows from in the circuit."""
+    if not chain.has_temperatures:
+        return {}
+    kinds = vocabulary()
+    found: dict[str, _Closing] = {}
+    flux = {"q": chain.results["heat flux"]}
+    numbers = {element.name: index for index, element in enumerate(chain.elements, 1)}
+
+    def drop_before(count: int) -> tuple[str, dict[str, str]]:
+        """The inner bulk temperature less the drops of the first elements."""
+        names = [(f"R_{numbers[element.name]}", chain.results[f"R {element.name}"]) for element in chain.elements[:count]]
+        summed = " + ".join(symbol for symbol, _ in names)
+        text = "T_in" if not names else f"T_in - q*({summed})" if len(names) > 1 else f"T_in - q*{summed}"
+        return text, {"T_in": chain.inner.bulk, **flux, **dict(names)}
+
+    for place, element in enumerate(chain.elements):
+        if isinstance(element, Layer) and element.first_temperature:
+            for name, mark, words in ((element.first_temperature, "T_1", "inner"), (element.second_temperature, "T_2", "outer")):
+                text, inputs = drop_before(place + (mark == "T_2"))
+                found[name] = _closed(mark, f"temperature at the {words} side", kinds["temperature"], text, inputs)
+        if isinstance(element, Group):
+            mark = f"R_{numbers[element.name]}"
+            inputs = {**flux, mark: chain.results[f"R {element.name}"]}
+            text = f"T_in - q*{mark}" if element.side == "inside" else f"T_out + q*{mark}"
+            inputs["T_in" if element.side == "inside" else "T_out"] = element.bulk
+            found[element.surface_temperature] = _closed("T_s", "surface temperature", kinds["temperature"], text, inputs)
+            area = chain.surfaces[element.surface].area
+            found[element.flux] = _closed("q", "heat flux at the surface", kinds["heat flux"], "abs(Q)/A",
+                                          {"Q": chain.results["heat flow"], "A": area})
+    return found
+
+
+def _closed(symbol: str, title: str, kind: QuantityKind, text: str, inputs: dict[str, str]) -> _Closing:
+    relation = parse_expression(text)
+    return _Closing(symbol, title, kind, relation, {name: inputs[name] for name in relation.symbols})
+
+
+def held_coefficients(chain: Chain) -> frozenset[str]:
+    """Ids under which film coefficients stand in the circuit, whichever method gave them."""
+    return frozenset(branch_coefficient(group, branch.name) for group in (chain.inner, chain.outer)
+                     for branch in group.branches)
