@@ -276,6 +276,11 @@ class _Builder:
         cut = self._cut(node) if style == "plain" else None
         if cut is not None and not node.value:
             return Scalar(cut.excerpt[cut.column - 1 :].strip(), cut)
+        hidden = _FORBIDDEN.search(node.value) if style == "quoted" else None
+        if hidden is not None:
+            self.collector.add("file-not-text", place, f"the text holds the character U+{ord(hidden.group()):04X},"
+                               " which cannot be seen", expected="plain text without such escapes")
+            return Scalar(_FORBIDDEN.sub("_", node.value), place, style)
         return Scalar(node.value, place, style)
 
     def _cut(self, node: yaml.ScalarNode) -> Place | None:
@@ -359,6 +364,13 @@ def _suspects(error: yaml.YAMLError, name: str, lines: list[str], text: list[str
         for start in _colons_in_braces(text[number]):
             yield (Fault("colon-in-text", place(number, start, start + 1), "`: ` inside a text starts a new key",
                          shown(lines[number].strip()), "the whole text in quotes"), mended(number, start, ";"))
+    bracket = re.search(r"[:,{] *[^\s,:{}\[\]'\"][^,:{}\[\]]*(\[[^\[\]{}]*\]|\{[^\[\]{}]*\})", _unquoted(text[line]))
+    if bracket:
+        start, end = bracket.span(1)
+        quiet = f"({text[line][start + 1 : end - 1].replace(',', ';').replace(':', ';')})"
+        yield (Fault("yaml-syntax", place(line, start, end), "brackets stand inside a text", "",
+                     "the whole text in quotes"),
+               [*text[:line], text[line][:start] + quiet + text[line][end:], *text[line + 1 :]])
     first = text[line][column : column + 1]
     if "\t" in text[line][: len(text[line]) - len(text[line].lstrip())]:
         start = text[line].index("\t")
@@ -397,7 +409,8 @@ def _unmended(error: yaml.YAMLError, place: Callable[[int, int, int], Place], li
         return Fault("yaml-syntax", place(begun, start, start + 1), f"the quote `{quote}` is not closed", "",
                      "the same quote at the end of the text; a quote inside the text written twice")
     spaces = len(lines[line]) - len(lines[line].lstrip())
-    if column == spaces and "expected" in problem and lines[line].strip():
+    deeper = "mapping values" in problem and ":" not in lines[line][:column]
+    if (deeper or column == spaces and "expected" in problem) and lines[line].strip():
         return Fault("yaml-syntax", place(line, spaces, len(lines[line])),
                      "the line does not fit the lines above: its indent, or what stands before it", "",
                      "`key: value` lines of one mapping at one indent, in blanks")
@@ -587,6 +600,8 @@ def _report_missing(fields: Fields, description: Description, collector: Collect
 def _shape_holds(key: Scalar, value: Node, known: Key, collector: Collector) -> bool:
     """Whether a value has the shape its key asks for; what its text means is the reader's business."""
     name = key.text
+    if known.kind == "mapping" and not known.required and isinstance(value, Scalar) and value.is_empty:
+        return False  # a heading without lines: as if it were absent
     if isinstance(value, Scalar) and not value.text.strip() and (known.required or known.kind != "prose"):
         # a source or a meaning may be left empty: an open item, no fault
         collector.add("value-missing", key.place, f"`{name}` has no value", expected=known.meaning)

@@ -8,9 +8,9 @@ from pathlib import Path
 
 import pytest
 
-import calcbook
 from calcbook.commands import COMMANDS
 from calcbook.faults import Faults
+from calcbook.interface import read, record, solve
 from calcbook.library import vocabulary
 from calcbook.quantities import QuantityFault, read_quantity, read_tolerance
 
@@ -65,7 +65,7 @@ def test_the_commands_are_those_of_the_readme() -> None:
 
 
 def test_the_example_solves_without_open_items(example: Path) -> None:
-    solved = calcbook.solve(calcbook.read(example))
+    solved = solve(read(example))
     assert solved.open_items == ()
     # All five terms of the file are in the circuit, in their order.
     names = [row.name for row in solved.base.terms["service"]]
@@ -73,10 +73,10 @@ def test_the_example_solves_without_open_items(example: Path) -> None:
 
 
 def test_every_line_of_the_excerpt_is_a_line_of_the_record(example: Path) -> None:
-    record = calcbook.record(calcbook.solve(calcbook.read(example))).splitlines()
+    lines = record(solve(read(example))).splitlines()
     excerpt = [line for line in _only("markdown").splitlines() if line.strip()]
     assert len(excerpt) > 5
-    assert [line for line in excerpt if line not in record] == []
+    assert [line for line in excerpt if line not in lines] == []
 
 
 def test_the_python_block_runs_as_it_stands(
@@ -86,7 +86,7 @@ def test_the_python_block_runs_as_it_stands(
     exec(compile(_only("python"), "README.md", "exec"), {})
     coefficient, rest = capsys.readouterr().out.split(" ", 1)
     assert rest == "W/(m² K) 0 open items\n"
-    solved = calcbook.solve(calcbook.read(example))
+    solved = solve(read(example))
     assert coefficient == f"{solved.base.results['U_service'].value:.1f}"
 
 
@@ -97,7 +97,7 @@ def test_the_printed_fault_is_the_one_that_the_mistake_gives(example: Path) -> N
     text = _only("yaml").replace(right.group(), wrong.group(1))
     example.write_text(text, encoding="utf-8")
     with pytest.raises(Faults) as raised:
-        calcbook.solve(calcbook.read(example))
+        solve(read(example))
     assert _only("text").removeprefix("wc-7.yaml").rstrip() in str(raised.value)
 
 
@@ -136,7 +136,7 @@ def _table_texts() -> tuple[set[str], set[str]]:
     """The texts of the README's table: those that are read, those that are refused."""
     rows = re.findall(r"^\| (`.*?) \| (.*) \|$", README.read_text(encoding="utf-8"), re.MULTILINE)
     rows = [(left, right) for left, right in rows if "calcbook" not in left]
-    read = {
+    taken = {
         text
         for left, right in rows
         if not right.startswith("refused")
@@ -145,12 +145,12 @@ def _table_texts() -> tuple[set[str], set[str]]:
     refused = {
         text for left, right in rows if right.startswith("refused") for text in re.findall(r"`(.*?)`", left)
     }
-    return read, refused
+    return taken, refused
 
 
 def test_the_table_of_quantities_is_tested_whole() -> None:
-    read, refused = _table_texts()
-    assert read == set(READ)
+    taken, refused = _table_texts()
+    assert taken == set(READ)
     assert refused == {*REFUSED, "tolerance: 1 degC", "2 %"}
 
 

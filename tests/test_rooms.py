@@ -20,8 +20,10 @@ PACKAGE = Path(__file__).resolve().parent.parent / "calcbook"
 
 # From the lowest room to the highest: a room imports rooms before it, never after it.
 ORDER = (
+    "files",
     "fault_codes",
     "faults",
+    "files",
     "quantities",
     "documents",
     "formulas",

@@ -5,6 +5,6 @@ May import: every room below it. Must never: know how a record looks, or compute
 
 from calcbook.book.finding import Found, find_calculations
 from calcbook.book.running import Outcome, run_all
-from calcbook.book.writing import write_whole
 
-__all__ = ["Found", "Outcome", "find_calculations", "run_all", "write_whole"]
+
+__all__ = ["Found", "Outcome", "find_calculations", "run_all"]

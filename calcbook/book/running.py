@@ -6,12 +6,14 @@ from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
 
 from calcbook.book.finding import Found
-from calcbook.book.writing import write_whole
+from calcbook.chain.outcome import Solved
 from calcbook.faults import Fault, Faults, Place
+from calcbook.files import write_whole
 from calcbook.interface import NotConverged, solve_file
 
 RECORD, RESULTS = "record.md", "results.json"
 PARALLEL_FROM = 8
+CONCLUSION_DIGITS = 3
 
 
 @dataclass(frozen=True, slots=True)
@@ -47,7 +49,7 @@ def run_all(files: Sequence[Found], jobs: int, tell: Callable[[Outcome], None]) 
 
 
 @dataclass(frozen=True, slots=True)
-class _Texts:
+class Texts:
     """The texts of a solved calculation, as they come back from a worker."""
 
     found: Found
@@ -56,7 +58,7 @@ class _Texts:
     results: str
 
 
-def _solved(files: Sequence[Found], jobs: int) -> Iterator[Outcome | _Texts]:
+def _solved(files: Sequence[Found], jobs: int) -> Iterator[Outcome | Texts]:
     if jobs == 1 or len(files) < PARALLEL_FROM:
         yield from map(_texts, files)
         return
@@ -68,20 +70,24 @@ def _solved(files: Sequence[Found], jobs: int) -> Iterator[Outcome | _Texts]:
         yield from pool.map(_texts, files, chunksize=max(1, min(16, len(files) // (4 * jobs))))
 
 
-def _texts(found: Found) -> Outcome | _Texts:
+def _texts(found: Found) -> Outcome | Texts:
     """Solve one file and make its texts; nothing is written yet."""
-    from calcbook.record import record_and_results
-
     try:
         solved = solve_file(found.path, found.name)
     except Faults as faults:
         return Outcome(found.name, faults=faults.faults)
     except NotConverged as error:
         return Outcome(found.name, not_converged=str(error))
-    record, results = record_and_results(solved)
-    calculation = solved.chain.calculation
-    from calcbook.record import conclusion
+    return texts_of(found, solved)
 
+
+def texts_of(found: Found, solved: Solved) -> Texts:
+    """Record and results of a solved calculation, from one digest and one list of versions."""
+    from calcbook.record import digest_of, markdown, record_blocks, results_text, software_of
+
+    digest = digest_of(solved)
+    software = software_of(digest)
+    calculation = solved.chain.calculation
     outcome = Outcome(
         found.name,
         calculation.number,
@@ -90,10 +96,18 @@ def _texts(found: Found) -> Outcome | _Texts:
         conclusion(solved, "U_service"),
         len(solved.open_items),
     )
-    return _Texts(found, outcome, record, results)
+    return Texts(found, outcome, markdown(record_blocks(solved, digest, software)), results_text(solved, digest, software))
 
 
-def _written(texts: _Texts, taken: dict[str, str]) -> Outcome:
+def conclusion(solved: Solved, name: str) -> str:
+    """A result as a conclusion prints it: three digits, in the unit of the report."""
+    from calcbook.record.numbers import in_report_unit
+
+    result = solved.base.results[name]
+    return in_report_unit(result.value, result.kind, solved.chain.calculation.report, CONCLUSION_DIGITS)
+
+
+def _written(texts: Texts, taken: dict[str, str]) -> Outcome:
     """Write the record and the results of one calculation, unless its number is taken."""
     number = texts.outcome.number
     first = taken.setdefault(number.casefold(), texts.found.name)

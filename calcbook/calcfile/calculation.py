@@ -14,7 +14,8 @@ from calcbook.quantities import Quantity
 class Value:
     """A figure where the file asks for one: a symbol of the givens, a word, or a quantity with its source.
 
-    ``stated_at`` is the state a volume flow is measured at.
+    ``stated_at`` is the state a volume flow is measured at. A figure that ``is_broken`` has its fault
+    already: it stands where a figure was written, so that nothing is called missing.
     """
 
     text: str
@@ -24,6 +25,7 @@ class Value:
     source: str = ""
     has_source: bool = False
     stated_at: Mapping[str, Value] = field(default_factory=dict)
+    is_broken: bool = False
 
     @property
     def is_literal(self) -> bool:
@@ -217,7 +219,11 @@ class Settings:
 
 @dataclass(frozen=True, slots=True)
 class Calculation:
-    """One calculation file, read. ``meaning`` is its canonical content, for the digest."""
+    """One calculation file, read. ``meaning`` is its canonical content, for the digest.
+
+    ``broken`` are the symbols of givens and derived quantities that have a fault of their own and stand in
+    neither mapping.
+    """
 
     file: str
     number: str
@@ -241,3 +247,4 @@ class Calculation:
     settings: Settings
     meaning: object
     place: Place
+    broken: frozenset[str] = frozenset()

@@ -82,7 +82,6 @@ SOURCED = Description(
     (
         Key("value", "number with unit", "name", required=True),
         Key("source", "document and place the value comes from"),
-        Key("at", "state a volume flow is measured at", "mapping"),
     ),
 )
 FLOW_STATE = Description(
@@ -92,6 +91,11 @@ FLOW_STATE = Description(
         Key("temperature", "temperature of the stated volume", "node", required=True),
         Key("pressure", "pressure of the stated volume", "node", required=True),
     ),
+)
+FLOW = Description(
+    "a flow",
+    "a flow with its source",
+    (*SOURCED.keys, Key("at", "state a volume flow is measured at", "mapping", of=FLOW_STATE)),
 )
 FLUID_TABLE = Description(
     "a fluid table",
@@ -111,9 +115,9 @@ FLUID = Description(
         Key("mixture", "names of the parts, such as ethylene glycol + water"),
         Key("mass fraction", "mass fraction of the first part", "node"),
         Key("volume fraction", "volume fraction of the first part", "node"),
-        Key("table", "properties against temperature", "mapping"),
+        Key("table", "properties against temperature", "mapping", of=FLUID_TABLE),
         Key("table file", "CSV file beside the calculation with a unit row", "name"),
-        Key("constants", "properties that do not change", "mapping"),
+        Key("constants", "properties that do not change", "mapping", of=FLUID_TABLE),
         Key("source", "document the properties come from"),
     ),
 )
@@ -183,7 +187,7 @@ TERM = Description(
         Key("conductivity", "stated wall conductivity", "node", quantity="wall conductivity"),
         Key("thickness", "wall thickness", "node", quantity="thickness"),
         Key("outside diameter", "outside diameter of the wall", "node", quantity="outside diameter"),
-        Key("deposit", "fouling layer by thickness", "mapping"),
+        Key("deposit", "fouling layer by thickness", "mapping", of=DEPOSIT),
         Key("emissivity", "emissivity of the surface", "node", quantity="emissivity"),
         Key("surroundings", "temperature the surface radiates to", "node", quantity="temperature"),
         Key("includes", "terms that a stated coefficient already includes", "list"),
@@ -194,6 +198,32 @@ TERM = Description(
         Key("fins", "fins on the surface", "node", later=True),
         Key("vapour velocity", "velocity of a vapour", "node", later=True),
     ),
+)
+# Which keys a term of each kind may have: a key that would have no effect is a fault.
+_STATED = ("coefficient", "resistance", "on")
+TERM_KEYS = {
+    "film": ("stream", "situation", "method", "with", *_STATED, "temperature", "includes", "holds for", "scales with"),
+    "fouling": (*_STATED, "deposit"),
+    "wall": ("material", "conductivity", "thickness", "outside diameter", "resistance", "on"),
+    "contact": _STATED,
+    "radiation": ("emissivity", "surroundings", "method"),
+    "stated": _STATED,
+}
+# Pairs of which only one can stand on a term.
+TERM_CONFLICTS = (
+    ("coefficient", "resistance"),
+    ("coefficient", "situation"),
+    ("coefficient", "method"),
+    ("coefficient", "with"),
+    ("resistance", "situation"),
+    ("resistance", "method"),
+    ("resistance", "with"),
+    ("resistance", "deposit"),
+    ("coefficient", "deposit"),
+    ("resistance", "material"),
+    ("resistance", "conductivity"),
+    ("material", "conductivity"),
+    ("thickness", "outside diameter"),
 )
 CRITERION = Description(
     "a criterion",

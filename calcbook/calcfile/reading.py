@@ -6,6 +6,7 @@ import datetime
 import keyword
 import re
 from collections.abc import Iterable, Mapping
+from dataclasses import replace
 from pathlib import Path
 
 from calcbook.calcfile import descriptions as described
@@ -33,25 +34,35 @@ from calcbook.documents import Description, Document, Fields, Node, Scalar, Sequ
 from calcbook.documents import Mapping as MappingNode
 from calcbook.faults import Collector, Place, nearest_names, shown
 from calcbook.formulas import Relation, RelationFault, parse_expression
-from calcbook.quantities import Quantity, QuantityFault, read_any
+from calcbook.quantities import (
+    Quantity,
+    QuantityFault,
+    QuantityKind,
+    read_any,
+    read_tolerance,
+    si_unit,
+    unit_factor,
+)
 
 NUMBER = re.compile(r"[A-Za-z0-9][A-Za-z0-9_.-]{0,39}")
 SYMBOL = re.compile(r"[A-Za-z][A-Za-z0-9_]{0,39}")
-OPERATORS = (">=", "<=", ">", "<")
+# What other ids of the chain start with: a term of that name would be taken for them.
+CLASHING_NAMES = frozenset("given derived geometry circuit solution book".split())
+CLASHING_STARTS = ("stream ", "case ", "fluid ", "assumption ", "word ", "unread ")
+CASE_WORDS = ("all", "base", "clean", "service")
 RESERVED = frozenset(
     "pi g_n sigma sqrt exp expm1 ln log log10 log1p abs min max sin cos tan asin acos atan sinh cosh tanh "
     "gamma_p i0e i1e k0e k1e mean table yes no true false and or not if else".split()
 )
-PROPERTIES = ("density", "viscosity", "conductivity", "heat capacity", "expansion coefficient")
 
 
 def read_calculation(path: Path, settings: Settings, collector: Collector, name: str | None = None) -> Calculation:
     """Read a calculation file.
 
-    Faults that leave a calculation to speak of go to ``collector``; a file that is no YAML mapping
-    raises ``Faults`` at once.
+    Faults that leave a calculation to speak of go to ``collector``; a file that is no YAML raises
+    ``Faults`` at once.
     """
-    document = read_file(path, name)
+    document = read_file(path, name, collector)
     return read_document(document, settings, collector, path.parent)
 
 
@@ -68,13 +79,16 @@ class _Reader:
         self.folder = folder
         self.place = document.root.place
         self.fields = read_mapping(document.root, described.FILE, collector, self.place)
-        self.fluids: dict[str, FluidText] = {}
+        self.fluids: dict[str, FluidText | None] = {}
+        self.broken: set[str] = set()
+        self.terms_hold = True
 
     def calculation(self) -> Calculation:
         head = self.mapping("calculation", described.HEAD)
-        givens = self.givens(self.fields.node("givens"))
+        givens = self.givens()
         derived = self.derived(givens)
         self.fluids = {key.text: self.fluid_record(key.text, value) for key, value in self.entries("fluids")}
+        terms = self.terms(self.fields.node("resistances"))
         return Calculation(
             file=self.document.name,
             number=self.number(head),
@@ -90,7 +104,7 @@ class _Reader:
             assumptions=self.assumptions(),
             streams={key.text: self.stream(key, value) for key, value in self.entries("streams")},
             geometry=self.geometry(),
-            resistances=self.terms(self.fields.node("resistances")),
+            resistances=terms if self.terms_hold else (),
             acceptance=self.acceptance(),
             report=self.report(),
             cases=self.cases(givens),
@@ -98,6 +112,7 @@ class _Reader:
             settings=self.settings,
             meaning=meaning_of(self.document.root),
             place=self.place,
+            broken=frozenset(self.broken),
         )
 
     # -- helpers ------------------------------------------------------------------------------------
@@ -110,54 +125,52 @@ class _Reader:
 
     def entries(self, name: str) -> Iterable[tuple[Scalar, Node]]:
         node = self.fields.node(name)
-        if node is None or (isinstance(node, Scalar) and node.is_empty):
-            return ()
-        if isinstance(node, MappingNode):
-            return node.entries
-        self.collector.add("mapping-expected", node.place, f"`{name}` must be a mapping", expected="name: value lines")
-        return ()
+        return node.entries if isinstance(node, MappingNode) else ()
 
     def items(self, name: str) -> tuple[Node, ...]:
         node = self.fields.node(name)
         return node.items if isinstance(node, Sequence) else ()
 
-    def value(self, node: Node | None) -> Value | None:
-        """A figure: a symbol or word, a quantity, or {value: …, source: …}."""
+    def value(self, node: Node | None, description: Description = described.SOURCED) -> Value | None:
+        """A figure: a symbol or word, a quantity, or {value: …, source: …}. None only where none is written."""
         if node is None:
             return None
         if isinstance(node, Scalar):
             return self.scalar_value(node, "", False)
         if isinstance(node, MappingNode):
-            fields = read_mapping(node, described.SOURCED, self.collector, node.place)
+            fields = read_mapping(node, description, self.collector, node.place)
             scalar = fields.scalar("value")
             if scalar is None:
-                return None
+                return Value("", node.place, is_broken=True)
             value = self.scalar_value(scalar, fields.text("source"), "source" in fields)
             at = fields.node("at")
-            if at is None or value is None:
-                return value
-            state = read_mapping(at, described.FLOW_STATE, self.collector, at.place)
-            stated = {name: found for name in state if (found := self.value(state.node(name))) is not None}
-            return Value(value.text, value.place, value.symbol, value.quantity, value.source, value.has_source, stated)
+            return value if at is None else replace(value, stated_at=self.flow_state(at))
         self.collector.add("value-not-text", node.place, "a single value is wanted here", found="a list",
                            expected="a symbol of the givens, or a number with its unit")
-        return None
+        return Value("", node.place, is_broken=True)
 
-    def scalar_value(self, node: Scalar, source: str, has_source: bool) -> Value | None:
+    def flow_state(self, node: Node) -> dict[str, Value]:
+        state = read_mapping(node, described.FLOW_STATE, self.collector, node.place)
+        return {name: found for name in state if (found := self.value(state.node(name))) is not None}
+
+    def scalar_value(self, node: Scalar, source: str, has_source: bool) -> Value:
         text = " ".join(node.text.split())
+        place = node.part(1, len(node.text) + 1)
         if SYMBOL.fullmatch(text) and text.lower() not in ("nan", "inf", "infinity"):
-            return Value(text, node.place, symbol=text, source=source, has_source=has_source)
+            return Value(text, place, symbol=text, source=source, has_source=has_source)
         quantity = self.quantity(node)
-        return Value(text, node.place, "", quantity, source, has_source) if quantity is not None else None
+        return Value(text, place, "", quantity, source, has_source, is_broken=quantity is None)
 
     def quantity(self, node: Scalar) -> Quantity | None:
         try:
             return read_any(node.text)
         except QuantityFault as error:
-            place = node.place.part(max(error.column - 1, 0), max(error.end_column - error.column, 1))
-            self.collector.add(error.code, place if node.style == "plain" else node.place, error.message,
-                               found=error.found, expected=error.expected, nearest=error.nearest)
+            self.quantity_fault(node, error)
             return None
+
+    def quantity_fault(self, node: Scalar, error: QuantityFault) -> None:
+        self.collector.add(error.code, node.part(error.column, error.end_column), error.message,
+                           found=error.found, expected=error.expected, nearest=error.nearest)
 
     def relation(self, node: Scalar | None) -> Relation | None:
         if node is None:
@@ -165,8 +178,8 @@ class _Reader:
         try:
             return parse_expression(node.text)
         except RelationFault as error:
-            self.collector.add(error.code, node.place.part(error.column - 1, error.end_column - error.column),
-                               error.message, expected=error.expected, nearest=error.nearest)
+            self.collector.add(error.code, node.part(error.column, error.end_column), error.message,
+                               found=shown(node.text), expected=error.expected, nearest=error.nearest)
             return None
 
     def date(self, fields: Fields, name: str) -> str:
@@ -174,7 +187,7 @@ class _Reader:
         if node is None:
             return ""
         try:
-            if not re.fullmatch(r"\d{4}-\d{2}-\d{2}", node.text):
+            if not re.fullmatch(r"[0-9]{4}-[0-9]{2}-[0-9]{2}", node.text):
                 raise ValueError
             datetime.date.fromisoformat(node.text)
         except ValueError:
@@ -195,6 +208,7 @@ class _Reader:
         return node.text
 
     def revision_name(self, head: Fields) -> str:
+        """The revision of a title block or of a line of the history."""
         node = head.scalar("revision")
         if node is not None and not re.fullmatch(r"[A-Za-z0-9][A-Za-z0-9.-]{0,9}", node.text):
             self.collector.add("revision-not-allowed", node.place, "this cannot be a revision",
@@ -205,35 +219,34 @@ class _Reader:
         result = []
         for item in self.items("revisions"):
             fields = read_mapping(item, described.REVISION, self.collector, item.place)
-            result.append(Revision(fields.text("revision"), self.date(fields, "date"), fields.text("reason"),
+            result.append(Revision(self.revision_name(fields), self.date(fields, "date"), fields.text("reason"),
                                    item.place))
         return tuple(result)
 
     # -- givens -------------------------------------------------------------------------------------
 
-    def givens(self, node: Node | None) -> dict[str, Given]:
-        if not isinstance(node, MappingNode):
-            return {}
+    def givens(self) -> dict[str, Given]:
         result = {}
-        for key, value in node.entries:
+        for key, value in self.entries("givens"):
             given = self.given(key, value)
             if given is not None:
                 result[key.text] = given
+            else:
+                self.broken.add(key.text)
         return result
 
     def given(self, key: Scalar, node: Node) -> Given | None:
         self.check_symbol(key)
         fields = read_mapping(node, described.GIVEN, self.collector, node.place)
         scalar = fields.scalar("value")
-        if scalar is None:
-            return None
-        quantity = self.quantity(scalar)
-        if quantity is None:
+        quantity = self.quantity(scalar) if scalar is not None else None
+        if scalar is None or quantity is None:
             return None
         text = " ".join(scalar.text.split())
-        value = Value(text, scalar.place, "", quantity, fields.text("source"), "source" in fields)
+        value = Value(text, scalar.part(1, len(scalar.text) + 1), "", quantity, fields.text("source"),
+                      "source" in fields)
         return Given(key.text, value, fields.text("is"), fields.text("source"),
-                     self.tolerance(fields.node("tolerance")), key.place)
+                     self.tolerance(fields.node("tolerance"), quantity), key.place)
 
     def check_symbol(self, key: Scalar) -> None:
         text = key.text
@@ -241,28 +254,39 @@ class _Reader:
             self.collector.add("symbol-not-allowed", key.place, f"`{shown(text)}` cannot be a symbol",
                                expected="a letter, then letters, digits or _, and no name of a function or constant")
 
-    def tolerance(self, node: Node | None) -> Tolerance | None:
+    def tolerance(self, node: Node | None, quantity: Quantity) -> Tolerance | None:
         if node is None:
             return None
         if isinstance(node, Scalar):
-            return Tolerance(" ".join(node.text.split()), node.place, "rectangular")
+            return self.half_width(node, quantity, "rectangular", 1.0)
         fields = read_mapping(node, described.TOLERANCE, self.collector, node.place)
-        for kind in ("standard", "expanded"):
-            scalar = fields.scalar(kind)
-            if scalar is not None:
-                return Tolerance(" ".join(scalar.text.split()), scalar.place, kind, self.coverage_factor(fields))
-        self.collector.add("key-missing", node.place, "a tolerance says `standard` or `expanded`",
-                           expected="{standard: 0.5 %} or {expanded: 1 %, k: 2}")
-        return None
+        stated = [kind for kind in ("standard", "expanded") if kind in fields]
+        if not stated:
+            self.collector.add("key-missing", node.place, "a tolerance says `standard` or `expanded`",
+                               expected="{standard: 0.5 %} or {expanded: 1 %, k: 2}")
+            return None
+        self.refuse_pair(fields, "standard", "expanded")
+        self.refuse_pair(fields, "standard", "k")
+        scalar = fields.scalar(stated[0])
+        assert scalar is not None
+        return self.half_width(scalar, quantity, stated[0], self.coverage_factor(fields))
+
+    def half_width(self, node: Scalar, quantity: Quantity, kind: str, factor: float) -> Tolerance | None:
+        """A tolerance whose text can be read beside its value; what it does is settled later."""
+        scale = "point" if quantity.reading == "point" else ""
+        unit = si_unit(quantity.dimension)
+        try:
+            read_tolerance(node.text, QuantityKind("tolerance", "x", unit, quantity.dimension, 5, "", scale))
+        except QuantityFault as error:
+            self.quantity_fault(node, error)
+            return None
+        return Tolerance(" ".join(node.text.split()), node.place, kind, factor)
 
     def coverage_factor(self, fields: Fields) -> float:
         node = fields.scalar("k")
         if node is None:
             return 1.0
-        try:
-            factor = float(node.text)
-        except ValueError:
-            factor = -1.0
+        factor = float(node.text) if re.fullmatch(r"[0-9]{1,3}(\.[0-9]{1,15})?", node.text) else 0.0
         if not 0.0 < factor < 100.0:
             self.collector.add("number-unreadable", node.place, "this is no coverage factor", found=shown(node.text),
                                expected="a number such as 2")
@@ -273,17 +297,35 @@ class _Reader:
         result = {}
         for key, node in self.entries("derived"):
             self.check_symbol(key)
-            if key.text in givens:
-                self.collector.add("symbol-twice", key.place, f"`{key.text}` is a given and a derived quantity")
+            if key.text in givens or key.text in self.broken:
+                self.collector.add("symbol-twice", key.place, f"`{key.text}` is a given and a derived quantity",
+                                   expected="one symbol for each quantity")
+                continue
             fields = read_mapping(node, described.DERIVED, self.collector, node.place)
-            relation = self.relation(fields.scalar("relation"))
-            if relation is not None:
-                result[key.text] = Derived(key.text, relation, fields.text("is"), fields.place_of("relation"))
-        return result
+            scalar = fields.scalar("relation")
+            relation = self.relation(scalar)
+            if scalar is None or relation is None:
+                self.broken.add(key.text)
+                continue
+            place = scalar.part(1, len(scalar.text) + 1)
+            result[key.text] = Derived(key.text, relation, fields.text("is"), place)
+        return self.without_broken(result)
+
+    def without_broken(self, derived: dict[str, Derived]) -> dict[str, Derived]:
+        """The derived quantities that rest on no symbol with a fault of its own."""
+        while True:
+            broken = {name for name, item in derived.items() if self.broken & set(item.relation.symbols)}
+            if not broken:
+                return derived
+            self.broken |= broken
+            derived = {name: item for name, item in derived.items() if name not in broken}
 
     def assumptions(self) -> tuple[Assumption, ...]:
         result = []
         for key, node in self.entries("assumptions"):
+            if not re.fullmatch(r"[A-Za-z][A-Za-z0-9_.-]{0,19}", key.text):
+                self.collector.add("name-not-allowed", key.place, f"an assumption cannot be called `{shown(key.text)}`",
+                                   expected="a letter, then letters, digits, - _ or ., such as A1")
             fields = read_mapping(node, described.ASSUMPTION, self.collector, node.place)
             by = date = evidence = ""
             answer = fields.node("verified")
@@ -300,63 +342,95 @@ class _Reader:
     # -- streams ------------------------------------------------------------------------------------
 
     def stream(self, key: Scalar, node: Node) -> Stream:
+        if not key.text.strip() or "/" in key.text:
+            self.collector.add("name-not-allowed", key.place, f"a stream cannot be called `{shown(key.text)}`",
+                               expected="a name without /")
         fields = read_mapping(node, described.STREAM, self.collector, node.place)
         return Stream(key.text, self.fluid(fields.node("fluid")), self.value(fields.node("temperature")),
-                      self.value(fields.node("pressure")), self.value(fields.node("flow")), fields.text("phase"),
-                      key.place)
+                      self.value(fields.node("pressure")), self.value(fields.node("flow"), described.FLOW),
+                      fields.text("phase"), key.place)
 
     def fluid(self, node: Node | None) -> FluidText | None:
+        """A fluid, or None where there is none or it has a fault."""
         if node is None:
             return None
         if isinstance(node, Scalar):
             name = " ".join(node.text.split())
-            return self.fluids.get(name, FluidText("name", name, node.place))
+            place = node.part(1, len(node.text) + 1)
+            return self.fluids[name] if name in self.fluids else FluidText("name", name, place)
         return self.fluid_record("fluid of the stream", node)
 
-    def fluid_record(self, name: str, node: Node) -> FluidText:
+    def fluid_record(self, name: str, node: Node) -> FluidText | None:
         fields = read_mapping(node, described.FLUID, self.collector, node.place)
+        kinds = [key for key in ("mixture", "table", "table file", "constants") if key in fields]
+        for other in kinds[1:]:
+            self.refuse_pair(fields, kinds[0], other)
+        if not kinds:
+            if isinstance(node, MappingNode) and not self.has_fault_in(node):
+                self.collector.add("key-missing", node.place, "a fluid is a name, a mixture, a table or constants",
+                                   expected="mixture: … | table: {…} | table file: … | constants: {…}")
+            return None
         source = fields.text("source")
-        if "mixture" in fields:
-            basis = next((key for key in ("mass fraction", "volume fraction") if key in fields), "")
-            if not basis:
-                self.collector.add("key-missing", node.place, "a mixture says its mass or volume fraction",
-                                   expected="mass fraction: 40 %")
-            return FluidText("mixture", fields.text("mixture"), node.place, basis, self.value(fields.node(basis)),
-                             source=source)
-        if "table file" in fields:
-            scalar = fields.scalar("table file")
-            assert scalar is not None
-            columns = read_table_file(self.folder / scalar.text, scalar.place, self.collector)
-            return FluidText("table", name, node.place, columns=columns, source=source)
-        kind = "table" if "table" in fields else "constants"
-        body = fields.node(kind)
-        if body is None:
-            self.collector.add("key-missing", node.place, "a fluid is a name, a mixture, a table or constants",
-                               expected="mixture: … | table: {…} | table file: … | constants: {…}")
-            return FluidText("constants", name, node.place, source=source)
-        return self.fluid_table(name, kind, body, source, node.place)
+        if kinds[0] == "mixture":
+            return self.mixture(fields, source, node)
+        for key in ("mass fraction", "volume fraction"):
+            self.refuse_pair(fields, kinds[0], key)
+        if kinds[0] == "table file":
+            return self.table_file(fields, name, source, node.place)
+        body = fields.node(kinds[0])
+        assert body is not None
+        return self.fluid_table(name, kinds[0], body, source, node.place)
 
-    def fluid_table(self, name: str, kind: str, body: Node, source: str, place: Place) -> FluidText:
+    def mixture(self, fields: Fields, source: str, node: Node) -> FluidText | None:
+        self.refuse_pair(fields, "mass fraction", "volume fraction")
+        basis = next((key for key in ("mass fraction", "volume fraction") if key in fields), "")
+        if not basis:
+            self.collector.add("key-missing", node.place, "a mixture says its mass or volume fraction",
+                               expected="mass fraction: 40 %")
+            return None
+        return FluidText("mixture", fields.text("mixture"), fields.place_of("mixture"), basis,
+                         self.value(fields.node(basis)), source=source)
+
+    def table_file(self, fields: Fields, name: str, source: str, place: Place) -> FluidText | None:
+        scalar = fields.scalar("table file")
+        assert scalar is not None
+        if not re.fullmatch(r"[A-Za-z0-9][A-Za-z0-9 _.-]{0,99}", scalar.text):
+            self.collector.add("name-not-allowed", scalar.place, "a table file stands beside the calculation file",
+                               found=shown(scalar.text), expected="the bare name of a CSV file, such as oil.csv")
+            return None
+        columns = read_table_file(self.folder / scalar.text, scalar.place, self.collector)
+        return FluidText("table", name, place, columns=columns, source=source) if columns is not None else None
+
+    def fluid_table(self, name: str, kind: str, body: Node, source: str, place: Place) -> FluidText | None:
+        before = len(tuple(self.collector))
         fields = read_mapping(body, described.FLUID_TABLE, self.collector, body.place)
         columns: dict[str, tuple[Value, ...]] = {}
         astm: tuple[tuple[Value, Value], ...] = ()
         for column in fields:
             node = fields.node(column)
-            if isinstance(node, MappingNode) and node.get("astm d341") is not None:
-                astm = self.astm_points(node.get("astm d341"), node.place)
-            elif isinstance(node, Sequence):
-                columns[column] = tuple(found for item in node.items if (found := self.value(item)) is not None)
-            else:
-                found = self.value(node)
-                columns[column] = (found,) if found is not None else ()
-        rows = len(columns.get("T", ()))
+            points = node.get("astm d341") if isinstance(node, MappingNode) else None
+            if points is not None and node is not None:
+                astm = self.astm_points(points, node.place)
+                continue
+            items = node.items if isinstance(node, Sequence) else (node,)
+            columns[column] = tuple(value for item in items if (value := self.value(item)) is not None)
         for column, values in columns.items():
+            symbols = [value for value in values if value.symbol]
+            for value in symbols:
+                self.collector.add("unit-missing", value.place, "a fluid's property is a number with its unit",
+                                   found=value.text, expected="a number with its unit, no symbol")
+            rows = len(columns.get("T", ()))
             if kind == "table" and rows and len(values) != rows:
                 self.collector.add("table-row-length", fields.place_of(column),
                                    f"`{column}` has {len(values)} entries, T has {rows}", expected=f"{rows} entries")
+            elif kind == "constants" and len(values) != 1:
+                self.collector.add("table-row-length", fields.place_of(column),
+                                   f"`{column}` has {len(values)} entries, a constant has one", expected="one figure")
+        if len(tuple(self.collector)) > before:
+            return None
         return FluidText(kind, name, place, columns=columns, astm=astm, source=source)
 
-    def astm_points(self, node: Node | None, place: Place) -> tuple[tuple[Value, Value], ...]:
+    def astm_points(self, node: Node, place: Place) -> tuple[tuple[Value, Value], ...]:
         points = []
         for item in node.items if isinstance(node, Sequence) else ():
             pair = [self.value(part) for part in item.items] if isinstance(item, Sequence) else []
@@ -364,9 +438,21 @@ class _Reader:
                 points.append((pair[0], pair[1]))
         if len(points) != 2:
             self.collector.add("astm-points", place, "a D341 viscosity has two points",
-                               expected="[[40 degC, 46 mm^2/s], [100 degC, 6.8 mm^2/s]]")
+                               found=f"{len(points)}", expected="[[40 degC, 46 mm^2/s], [100 degC, 6.8 mm^2/s]]")
             return ()
         return tuple(points)
+
+    def has_fault_in(self, node: MappingNode) -> bool:
+        """Whether a key of a mapping has a fault already: what is missing may be what was mistyped."""
+        keys = {key.place for key, _ in node.entries}
+        return any(fault.place in keys for fault in self.collector)
+
+    def refuse_pair(self, fields: Fields, one: str, other: str) -> None:
+        """A fault where two keys stand of which only one can."""
+        if one in fields and other in fields:
+            self.collector.add("key-conflict", fields.key_places[other],
+                               f"`{other}` cannot stand beside `{one}`", found=f"`{one}` and `{other}`",
+                               expected="one of the two")
 
     # -- geometry and terms -------------------------------------------------------------------------
 
@@ -395,22 +481,18 @@ class _Reader:
     def term(self, node: Node, index: int) -> Term:
         fields = read_mapping(node, described.TERM, self.collector, node.place)
         name = fields.text("name") or f"term {index + 1}"
-        if "parallel" in fields:
+        self.check_term_name(fields, name)
+        if isinstance(node, MappingNode) and node.key("parallel") is not None:
             return self.parallel(fields, name)
-        for key in ("name", "kind"):
-            if key not in fields:
-                self.collector.add("key-missing", fields.place, f"a term lacks the key `{key}`",
-                                   expected="name: …, kind: " + " | ".join(described.TERM_KINDS))
-        if "/" in name:
-            self.collector.add("name-not-allowed", fields.place_of("name"), "a term's name has no solidus",
-                               found=shown(name), expected="a name without /")
+        kind = self.term_kind(fields, node)
         text_keys = ("name", "kind", "stream", "situation", "method", "on", "material")
         value_keys = ("coefficient", "resistance", "temperature", "conductivity", "thickness", "outside diameter",
                       "emissivity", "surroundings")
         values = {key: value for key in value_keys if (value := self.value(fields.node(key))) is not None}
+        scales = self.relation(fields.scalar("scales with"))
         return Term(
             name=name,
-            kind=fields.text("kind"),
+            kind=kind,
             place=fields.place,
             texts={key: fields.text(key) for key in text_keys if key in fields},
             text_places={key: fields.place_of(key) for key in fields},
@@ -419,18 +501,53 @@ class _Reader:
             deposit=self.deposit(fields.node("deposit")),
             includes=self.names_of(fields.node("includes")),
             holds_for=self.range_of(fields.node("holds for")),
-            scales_with=self.relation(fields.scalar("scales with")),
+            scales_with=scales if scales is not None and not self.broken & set(scales.symbols) else None,
         )
 
+    def term_kind(self, fields: Fields, node: Node) -> str:
+        """The kind of a term, with its keys checked; a mistyped kind is read on as the nearest one."""
+        written = node.get("kind") if isinstance(node, MappingNode) else None
+        kind = written.text if isinstance(written, Scalar) else ""
+        for key in ("name", "kind"):
+            if isinstance(node, MappingNode) and node.key(key) is None:
+                self.collector.add("key-missing", fields.place, f"a term lacks the key `{key}`",
+                                   expected="name: …, kind: " + " | ".join(described.TERM_KINDS))
+        if kind not in described.TERM_KINDS:
+            self.terms_hold = self.terms_hold and bool(nearest_names(kind, described.TERM_KINDS))
+            kind = next(iter(nearest_names(kind, described.TERM_KINDS)), "")
+        if kind:
+            self.check_term_keys(fields, kind)
+        return kind
+
+    def check_term_keys(self, fields: Fields, kind: str) -> None:
+        allowed = described.TERM_KEYS[kind]
+        for key in fields:
+            if key not in ("name", "kind", *allowed):
+                self.collector.add("key-unknown", fields.key_places[key], f"a term of kind {kind} has no key `{key}`",
+                                   found=key, expected=", ".join(("name", "kind", *allowed)),
+                                   nearest=nearest_names(key, allowed))
+        for one, other in described.TERM_CONFLICTS:
+            if one in allowed and other in allowed:
+                self.refuse_pair(fields, one, other)
+
+    def check_term_name(self, fields: Fields, name: str) -> None:
+        if "/" in name or name in CLASHING_NAMES or name.startswith(CLASHING_STARTS):
+            self.collector.add("name-not-allowed", fields.place_of("name"), f"a term cannot be called `{shown(name)}`",
+                               found=shown(name), expected="a name without /, such as tube-side film")
+
     def parallel(self, fields: Fields, name: str) -> Term:
-        if "kind" in fields:
-            self.collector.add("key-unknown", fields.place_of("kind"), "a parallel entry has no kind of its own",
-                               expected="name and parallel only")
+        for key in fields:
+            if key not in ("name", "parallel"):
+                self.collector.add("key-unknown", fields.key_places[key], f"a parallel entry has no key `{key}`",
+                                   found=key, expected="name, parallel")
         branches = self.terms(fields.node("parallel"))
         for branch in branches:
             if branch.kind not in ("film", "radiation"):
-                self.collector.add("term-order", branch.place, "films and radiation can act side by side on a surface",
+                self.terms_hold = False
+                self.collector.add("term-order", branch.place_of("kind"),
+                                   "films and radiation can act side by side on a surface",
                                    found=branch.kind, expected="kind: film or radiation")
+        self.terms_hold = self.terms_hold and bool(branches)
         if "name" not in fields:
             name = " beside ".join(branch.name for branch in branches)
         return Term(name, "parallel", fields.place, branches=branches,
@@ -449,24 +566,41 @@ class _Reader:
                        fields.text("narrows") in ("yes", "true"), node.place)
 
     def names_of(self, node: Node | None) -> tuple[str, ...]:
-        if not isinstance(node, Sequence):
-            return ()
-        return tuple(item.text for item in node.items if isinstance(item, Scalar))
+        names = []
+        for item in node.items if isinstance(node, Sequence) else ():
+            if isinstance(item, Scalar):
+                names.append(item.text)
+            else:
+                self.collector.add("value-not-text", item.place, "the name of a term is wanted here",
+                                   expected="[tube wall]")
+        return tuple(names)
 
     def range_of(self, node: Node | None) -> tuple[Value, Value] | None:
-        """`holds for: {flow: 20 kg/s .. 26 kg/s}`; the key is a symbol or `flow`, `temperature`, `pressure`."""
+        """`holds for: {flow: 20 kg/s .. 26 kg/s}`; the key is a symbol or `flow`, `temperature`, `pressure`.
+
+        The key stands as the source of both ends.
+        """
         if node is None:
             return None
-        if isinstance(node, MappingNode) and len(node.entries) == 1 and isinstance(node.entries[0][1], Scalar):
-            key, scalar = node.entries[0]
-            low, dots, high = scalar.text.partition("..")
-            parts = [self.scalar_value(Scalar(part.strip(), scalar.place, "quoted"), key.text, True)
-                     for part in (low, high)]
-            if dots and parts[0] is not None and parts[1] is not None:
-                return parts[0], parts[1]
-        self.collector.add("range-unreadable", node.place, "`holds for` gives one symbol and its range",
+        entries = node.entries if isinstance(node, MappingNode) else ()
+        if len(entries) == 1 and isinstance(entries[0][1], Scalar):
+            key, scalar = entries[0]
+            parts = re.fullmatch(r"\s*(.*?\S)\s*\.\.\s*(\S.*?)\s*", scalar.text)
+            if parts is not None:
+                ends = [self.range_end(scalar, *parts.span(number)) for number in (1, 2)]
+                if any(end is None for end in ends) or key.text in self.broken:
+                    return None
+                low, high = (Value(end.text, scalar.place, "", end, key.text, True) for end in ends if end is not None)
+                if low.quantity is None or high.quantity is None or low.quantity.value < high.quantity.value:
+                    return low, high
+        place = entries[0][1].place if len(entries) == 1 else node.place
+        self.collector.add("range-unreadable", place, "`holds for` gives one symbol and its range, low to high",
                            expected="holds for: {m_cold: 20 kg/s .. 26 kg/s}")
         return None
+
+    def range_end(self, scalar: Scalar, start: int, end: int) -> Quantity | None:
+        part = Scalar(scalar.text[start:end], scalar.part(start + 1, end + 1))
+        return self.quantity(part)
 
     # -- acceptance, report, cases ------------------------------------------------------------------
 
@@ -483,16 +617,16 @@ class _Reader:
         return tuple(result)
 
     def criterion(self, scalar: Scalar, source: str) -> Criterion | None:
-        text = " ".join(scalar.text.split())
-        match = re.fullmatch(r"(.+?)\s*(>=|<=|>|<)\s*(.+)", text)
+        match = re.fullmatch(r"\s*(.+?)\s*(>=|<=|>|<)\s*([^=<>\s].*?)\s*", scalar.text, re.DOTALL)
         if match is None:
             self.collector.add("criterion-unreadable", scalar.place, "a criterion is a result, an operator and a limit",
-                               found=shown(text), expected="U_service >= 1000 W/(m^2 K)")
+                               found=shown(scalar.text), expected="U_service >= 1000 W/(m^2 K)")
             return None
-        offset = scalar.text.find(match.group(3)) if scalar.style == "plain" else 0
-        limit_node = Scalar(match.group(3), scalar.place.part(max(offset, 0), len(match.group(3))), "plain")
-        limit = self.scalar_value(limit_node, source, bool(source))
-        return Criterion(text, match.group(1), match.group(2), limit, source, scalar.place) if limit else None
+        limit = self.scalar_value(Scalar(match.group(3), scalar.part(match.start(3) + 1, match.end(3) + 1)), source,
+                                  bool(source))
+        result = " ".join(match.group(1).split())
+        place = scalar.part(match.start(1) + 1, match.end(1) + 1)
+        return Criterion(" ".join(scalar.text.split()), result, match.group(2), limit, source, place)
 
     def report(self) -> Report:
         fields = self.mapping("report", described.REPORT)
@@ -502,45 +636,77 @@ class _Reader:
         if isinstance(units, Scalar):
             if units.text not in ("SI", "US customary"):
                 self.collector.add("choice-unknown", units.place, f"units cannot be `{shown(units.text)}`",
-                                   expected="SI | US customary | a mapping of quantity: unit",
+                                   found=shown(units.text), expected="SI | US customary | a mapping of quantity: unit",
                                    nearest=nearest_names(units.text, ("SI", "US customary")))
             default = units.text
         elif isinstance(units, MappingNode):
-            by_quantity = {key.text: item.text for key, item in units.entries if isinstance(item, Scalar)}
+            by_quantity = {key.text: self.unit(item) for key, item in units.entries}
+        elif units is not None:
+            self.collector.add("value-not-text", units.place, "`units` must be a word or a mapping", found="a list",
+                               expected="SI | US customary | a mapping of quantity: unit")
         return Report(fields.text("U on"), fields.place_of("U on"), default, by_quantity)
+
+    def unit(self, node: Node) -> str:
+        """The unit that a quantity is reported in."""
+        if not isinstance(node, Scalar):
+            self.collector.add("value-not-text", node.place, "a unit is wanted here", expected="a unit such as W/(m^2 K)")
+            return "1"
+        try:
+            unit_factor(node.text)
+        except QuantityFault as error:
+            self.quantity_fault(node, error)
+        return node.text
 
     def cases(self, givens: Mapping[str, Given]) -> dict[str, dict[str, Given]]:
         result: dict[str, dict[str, Given]] = {}
         for key, node in self.entries("cases"):
-            if not re.fullmatch(r"[A-Za-z0-9][A-Za-z0-9 _.-]{0,39}", key.text) or key.text in ("all", "clean", "service"):
+            if not re.fullmatch(r"[A-Za-z0-9][A-Za-z0-9 _.-]{0,39}", key.text) or key.text in CASE_WORDS:
                 self.collector.add("name-not-allowed", key.place, f"a case cannot be called `{shown(key.text)}`",
-                                   expected="letters, digits, blanks, - _ . and not all, clean or service")
+                                   found=shown(key.text),
+                                   expected=f"letters, digits, blanks, - _ . and not {', '.join(CASE_WORDS)}")
             result[key.text] = self.case(node, givens)
         return result
 
     def case(self, node: Node, givens: Mapping[str, Given]) -> dict[str, Given]:
         changes: dict[str, Given] = {}
-        if not isinstance(node, MappingNode):
-            self.collector.add("mapping-expected", node.place, "a case restates givens", expected="symbol: value lines")
-            return changes
-        for key, item in node.entries:
+        for key, item in node.entries if isinstance(node, MappingNode) else ():
             base = givens.get(key.text)
-            if base is None:
+            if base is not None:
+                change = self.restated(key, item, base)
+                if change is not None:
+                    changes[key.text] = change
+            elif key.text not in self.broken:
                 self.collector.add("symbol-unknown", key.place, f"a case restates givens; `{shown(key.text)}` is none",
-                                   expected=", ".join(givens), nearest=nearest_names(key.text, givens))
-                continue
-            if isinstance(item, Scalar):
-                quantity = self.quantity(item)
-                if quantity is not None:
-                    value = Value(" ".join(item.text.split()), item.place, "", quantity)
-                    changes[key.text] = Given(key.text, value, base.meaning, "", base.tolerance, key.place)
-                continue
-            given = self.given(key, item)
-            if given is not None:
-                tolerance = given.tolerance or base.tolerance
-                changes[key.text] = Given(key.text, given.value, given.meaning or base.meaning, given.source,
-                                          tolerance, key.place)
+                                   found=shown(key.text), expected=", ".join(givens),
+                                   nearest=nearest_names(key.text, givens))
         return changes
+
+    def restated(self, key: Scalar, item: Node, base: Given) -> Given | None:
+        """A given as a case restates it: of the same quantity, its tolerance carried over."""
+        if isinstance(item, Scalar):
+            quantity = self.quantity(item)
+            if quantity is None:
+                return None
+            value = Value(" ".join(item.text.split()), item.part(1, len(item.text) + 1), "", quantity)
+            given = Given(key.text, value, base.meaning, "", base.tolerance, key.place)
+        else:
+            found = self.given(key, item)
+            if found is None:
+                return None
+            given = replace(found, meaning=found.meaning or base.meaning, tolerance=found.tolerance or base.tolerance)
+        before, after = base.value.quantity, given.value.quantity
+        assert before is not None and after is not None
+        if before.dimension != after.dimension:
+            self.collector.add("unit-dimension", given.value.place,
+                               f"a case restates `{key.text}` as another quantity",
+                               found=given.value.text, expected=f"a unit like that of {base.value.text}")
+            return None
+        if "gauge" in (before.reading, after.reading) and before.reading != after.reading:
+            self.collector.add("unit-dimension", given.value.place,
+                               f"a case restates `{key.text}` on another pressure base",
+                               found=given.value.text, expected=f"gauge or absolute as in {base.value.text}")
+            return None
+        return given
 
     def accept(self) -> tuple[Acceptance, ...]:
         result = []
@@ -548,6 +714,7 @@ class _Reader:
             fields = read_mapping(item, described.ACCEPT, self.collector, item.place)
             direction = next((key for key in ("down to", "up to") if key in fields), "")
             bound = self.value(fields.node(direction)) if direction else None
+            self.refuse_pair(fields, "down to", "up to")
             if not direction:
                 self.collector.add("key-missing", fields.place, "an accepted check states its bound",
                                    expected="down to: … or up to: … (of the checked figure)")

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-import csv
+import re
 from pathlib import Path
 
 from calcbook.calcfile.calculation import Value
@@ -13,42 +13,79 @@ COLUMNS = ("T", "density", "viscosity", "conductivity", "heat capacity")
 MAXIMUM_BYTES = 2_000_000
 
 
-def read_table_file(path: Path, place: Place, collector: Collector) -> dict[str, tuple[Value, ...]]:
-    """Columns by name. Codes: file-not-found, file-too-large, file-not-utf8, column-unknown, table-row-length."""
+def read_table_file(path: Path, place: Place, collector: Collector) -> dict[str, tuple[Value, ...]] | None:
+    """Columns by name, or None after a fault.
+
+    Codes: file-not-found, file-too-large, file-not-utf8, file-not-text, column-unknown, table-row-length, and
+    those of quantities.
+    """
+    before = len(tuple(collector))
+    lines = _lines(path, place, collector)
+    columns = _columns(lines, path.name, place, collector) if lines is not None else {}
+    return columns if len(tuple(collector)) == before else None
+
+
+def _lines(path: Path, place: Place, collector: Collector) -> list[str] | None:
     try:
-        data = path.read_bytes()
+        with path.open("rb") as stream:
+            data = stream.read(MAXIMUM_BYTES + 1)
     except OSError:
+        beside = sorted(item.name for item in path.parent.glob("*.csv"))
         collector.add("file-not-found", place, "the table file cannot be read", found=path.name,
-                      expected="a CSV file beside the calculation file")
-        return {}
+                      expected="a CSV file beside the calculation file", nearest=nearest_names(path.name, beside))
+        return None
     if len(data) > MAXIMUM_BYTES:
         collector.add("file-too-large", place, "the table file is too large", expected="at most 2 MB")
-        return {}
+        return None
     try:
-        lines = data.decode("utf-8-sig").splitlines()
+        text = data.decode("utf-8-sig")
     except UnicodeDecodeError:
         collector.add("file-not-utf8", place, "the table file is not UTF-8 text", expected="UTF-8 text")
-        return {}
-    rows = [(number, [cell.strip() for cell in row]) for number, row in enumerate(csv.reader(lines), 1) if any(row)]
+        return None
+    if re.search("[\x00-\x08\x0b-\x0c\x0e-\x1f]", text):
+        collector.add("file-not-text", place, "the table file holds control characters", expected="plain text")
+        return None
+    return re.split("\r\n|\r|\n", text)
+
+
+def _columns(lines: list[str], name: str, place: Place, collector: Collector) -> dict[str, tuple[Value, ...]]:
+    # No quotes in a table of figures: each line is one row.
+    rows = [(number, row) for number, line in enumerate(lines, 1) if any(row := _cells(line))]
     if len(rows) < 3:
         collector.add("table-row-length", place, "the table file lacks rows",
                       expected="a row of names, a row of units, then figures")
         return {}
-    names, units = rows[0][1], rows[1][1]
-    for name in names:
-        if name not in COLUMNS:
-            collector.add("column-unknown", Place(path.name, 1, 1, 2, lines[0]), f"there is no property `{shown(name)}`",
-                          found=shown(name), expected=", ".join(COLUMNS), nearest=nearest_names(name, COLUMNS))
-    columns: dict[str, list[Value]] = {name: [] for name in names if name in COLUMNS}
-    for number, row in rows[2:]:
-        where = Place(path.name, number, 1, 2, lines[number - 1])
-        if len(row) != len(names) or len(units) != len(names):
-            collector.add("table-row-length", where, "the row does not fit the names", expected=", ".join(names))
-            continue
-        for name, cell, unit in zip(names, row, units, strict=True):
-            if name in columns:
-                _take(columns[name], f"{cell} {unit}".strip(), where, collector)
-    return {name: tuple(values) for name, values in columns.items()}
+    (first, names), (_, units) = rows[0], rows[1]
+    for position, column in enumerate(names):
+        where = _cell_place(name, first, lines[first - 1], position)
+        if column not in COLUMNS:
+            collector.add("column-unknown", where, f"there is no property `{shown(column)}`", found=shown(column),
+                          expected=", ".join(COLUMNS), nearest=nearest_names(column, COLUMNS))
+        elif column in names[:position]:
+            collector.add("key-twice", where, f"the column `{column}` stands twice", expected="each column once")
+    columns: dict[str, list[Value]] = {column: [] for column in names if column in COLUMNS}
+    for number, row in rows[1:]:
+        line = lines[number - 1]
+        if len(row) != len(names):
+            collector.add("table-row-length", Place(name, number, 1, len(line) + 1, line),
+                          f"the row has {len(row)} cells, the names have {len(names)}", expected=", ".join(names))
+        elif number != rows[1][0] and len(units) == len(names):
+            for position, (column, cell, unit) in enumerate(zip(names, row, units, strict=True)):
+                if column in columns:
+                    where = _cell_place(name, number, line, position)
+                    _take(columns[column], f"{cell} {unit}".strip(), where, collector)
+    return {column: tuple(values) for column, values in columns.items()}
+
+
+def _cells(line: str) -> list[str]:
+    return [cell.strip() for cell in line.split(",")]
+
+
+def _cell_place(name: str, number: int, line: str, position: int) -> Place:
+    cells = line.split(",")
+    start = sum(len(cell) + 1 for cell in cells[:position])
+    blanks = len(cells[position]) - len(cells[position].lstrip())
+    return Place(name, number, start + blanks + 1, start + len(cells[position].rstrip()) + 1, line)
 
 
 def _take(column: list[Value], text: str, where: Place, collector: Collector) -> None:

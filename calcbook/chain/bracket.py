@@ -1,199 +1,184 @@
-"""Stragglers: samples that Newton did not close, bracketed in Q, where the summed drop rises with Q.
+"""What Newton's method leaves open, bracketed: in Q, where the summed drop rises with Q, and within it drop by drop.
 
-A law that jumps at a joint can have no root there: then the side with the lower coefficient is taken,
-both figures are kept, and the caller raises an open item.
+A law that jumps at a joint can have no root there: then the side with the lower coefficient is held, both
+coefficients are kept, and the caller raises an open item. All samples are bracketed together.
 """
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from typing import TYPE_CHECKING
 
 import numpy as np
 
-from calcbook.chain.types import Group, Layer
+from calcbook.chain.closing import newton, temperature_range
+from calcbook.chain.types import Branch, Group
 
 if TYPE_CHECKING:
-    from calcbook.chain.solve import _Engine
+    from calcbook.chain.solve import Engine
 
 Array = np.ndarray
-SPAN = 60
-BISECTIONS = 200
-SMALLEST = 1e-9
-LAW_TOLERANCE = 1e-7
+Excess = Callable[[Array], Array]
+PASSES = 120
+EXPANSIONS = 60
+# A bracket is closed when its ends differ by rounding.
+WIDTH = 4e-16
+# How well a law must be met, relative; and how far beside a joint its two sides are taken.
+LAW_TOLERANCE = 1e-10
+JOINT_SHIFT = 1e-9
+JOINT_GAP = 1e-7
 
 
-def bracket(engine: _Engine, samples: Array) -> Array:
-    """Close the samples one by one; writes flow and drops; returns which have an answer."""
-    return np.asarray([_Straggler(engine, int(sample)).close() for sample in samples], dtype=bool)
+def bracket(engine: Engine, samples: Array) -> Array:
+    """Close some samples; writes flow and drops; returns which have an answer."""
+    settled = np.zeros(len(samples), dtype=bool)
+    for _ in range(1 + len(engine.moving)):
+        places = np.flatnonzero(~settled)
+        settled[places] = _found(engine, samples[places])
+        places = np.flatnonzero(~settled)
+        if not len(places) or not _hold_lower_sides(engine, samples[places]):
+            break
+    return settled
 
 
-class _Straggler:
-    def __init__(self, engine: _Engine, sample: int):
-        self.engine = engine
-        self.sample = np.asarray([sample])
-        self.at = sample
-        self.difference = float(engine.difference[sample])
+def _found(engine: Engine, samples: Array) -> Array:
+    """Bracket, then polish: what Newton's method makes worse stays as it was bracketed."""
+    flow = _flow(engine, samples)
+    drops = _drops(engine, samples, flow)
+    settled = newton(engine, samples, flow, drops)
+    engine.flow[samples[~settled]] = flow[~settled]
+    engine.drops[:, samples[~settled]] = drops[:, ~settled]
+    return settled | _meets_laws(engine, samples)
 
-    def close(self) -> bool:
-        low, high = self._bounds()
-        if low is None or high is None:
-            return False
-        for _ in range(BISECTIONS):
-            middle = 0.5 * (low + high)
-            if middle in (low, high):
-                break
-            excess = self._excess(middle)
-            if not np.isfinite(excess):
-                return False
-            if excess > 0.0:
-                high = middle
-            else:
-                low = middle
-        flow = 0.5 * (low + high)
-        drops = self._drops(flow)
-        if drops is None:
-            return False
-        self.engine.flow[self.at] = flow
-        self.engine.drops[:, self.at] = drops
-        return self._settle(flow, drops)
 
-    # -- bounds of Q --------------------------------------------------------------------------------
+def _meets_laws(engine: Engine, samples: Array) -> Array:
+    flow, drops = engine.flow[samples], np.take(engine.drops, samples, axis=1)
+    met = np.isfinite(flow)
+    tolerance = LAW_TOLERANCE + 4.0 * engine.resolution(drops, samples)
+    for number in range(len(drops)):
+        carried, _, _ = engine.carried(number, drops, flow, samples)
+        met &= np.abs(carried - flow) <= tolerance * np.abs(flow)
+    summed = drops.sum(axis=0) + flow * engine.still[samples] - engine.difference[samples]
+    return met & (np.abs(summed) <= LAW_TOLERANCE * np.abs(drops).max(axis=0))
 
-    def _bounds(self) -> tuple[float | None, float | None]:
-        """Two heat flows between which the summed drop passes the whole difference."""
-        scale = max(abs(self.difference), 1e-3)
-        if not self.engine.foreign:
-            sign = 1.0 if self.difference > 0 else -1.0
-            low, high = sign * SMALLEST * scale, sign * scale
-            for _ in range(SPAN):
-                excess = self._excess(high)
-                if np.isfinite(excess) and sign * excess > 0.0:
-                    return (low, high) if sign > 0 else (high, low)
-                if not np.isfinite(excess):
-                    return None, None
-                high *= 4.0
-            return None, None
-        reach = scale
-        for _ in range(SPAN):
-            below, above = self._excess(-reach), self._excess(reach)
-            if below < 0.0 < above:
-                return -reach, reach
-            reach *= 4.0
-        return None, None
 
-    def _excess(self, flow: float) -> float:
-        drops = self._drops(flow)
-        if drops is None:
-            return float("nan")
-        return float(drops.sum() + flow * self.engine.still[self.at] - self.difference)
+# --- the heat flow ----------------------------------------------------------------------------------
 
-    # -- drops at a given Q -------------------------------------------------------------------------
 
-    def _drops(self, flow: float) -> Array | None:
-        """The drop of every moving element when it carries a heat flow."""
-        drops = np.zeros(len(self.engine.moving))
-        for index, _ in enumerate(self.engine.moving):
-            found = self._drop(index, flow, drops)
-            if found is None:
-                return None
-            drops[index] = found
-        return drops
+def _flow(engine: Engine, samples: Array) -> Array:
+    """The heat flow at which the drops add up to the whole difference."""
+    difference, still = engine.difference[samples], engine.still[samples]
 
-    def _drop(self, index: int, flow: float, drops: Array) -> float | None:
-        sign = 1.0 if flow > 0 else -1.0
-        low, high = self._drop_bounds(index, flow, drops, sign)
-        if low is None or high is None:
-            return None
-        for _ in range(BISECTIONS):
-            middle = 0.5 * (low + high)
-            if middle in (low, high):
-                break
-            carried = self._carried(index, middle, flow, drops)
-            if not np.isfinite(carried):
-                return None
-            if carried > flow:
-                high = middle
-            else:
-                low = middle
-        return 0.5 * (low + high)
+    def excess(flow: Array) -> Array:
+        return _drops(engine, samples, flow).sum(axis=0) + flow * still - difference
 
-    def _drop_bounds(self, index: int, flow: float, drops: Array, sign: float) -> tuple[float | None, float | None]:
-        """Two drops between which the carried heat flow passes the given one (it rises with the drop)."""
-        reach = 1e-6
-        for _ in range(SPAN):
-            low, high = (-reach, reach) if self.engine.foreign else ((0.0, reach) if sign > 0 else (-reach, 0.0))
-            edge = high if sign > 0 or self.engine.foreign else low
-            carried = self._carried(index, edge, flow, drops)
-            other = self._carried(index, low, flow, drops) if self.engine.foreign else None
-            if not np.isfinite(carried):
-                return None, None
-            if other is None and sign * carried >= sign * flow:
-                return low, high
-            if other is not None and other <= flow <= carried:
-                return low, high
-            reach *= 2.0
-        return None, None
+    low, high = _flow_bounds(engine, samples, excess)
+    return _root(excess, low, high)
 
-    def _carried(self, index: int, drop: float, flow: float, drops: Array) -> float:
+
+def _flow_bounds(engine: Engine, samples: Array, excess: Excess) -> tuple[Array, Array]:
+    """Two heat flows with the answer between them."""
+    difference = engine.difference[samples]
+    reach = np.maximum(np.abs(difference), 1e-3)
+    up = (difference > 0.0) | engine.foreign
+    down = (difference < 0.0) | engine.foreign
+    low, high = np.where(down, -reach, 0.0), np.where(up, reach, 0.0)
+    for _ in range(EXPANSIONS):
+        short_above, short_below = up & (excess(high) < 0.0), down & (excess(low) > 0.0)
+        if not (short_above | short_below).any():
+            break
+        high, low = np.where(short_above, 4.0 * high, high), np.where(short_below, 4.0 * low, low)
+    return low, high
+
+
+# --- the drops at a heat flow -----------------------------------------------------------------------
+
+
+def _drops(engine: Engine, samples: Array, flow: Array) -> Array:
+    """The drop of every moving element when it carries a heat flow; at most the whole range of temperatures.
+
+    Where a law has no value (a fluid beyond its data), the root is taken to lie nearer to no drop.
+    """
+    lowest, highest = temperature_range(engine, samples)
+    span = highest - lowest
+    drops = np.zeros((len(engine.moving), len(samples)))
+    up, down = (flow > 0.0) | engine.foreign, (flow < 0.0) | engine.foreign
+    for number in range(len(drops)):
         trial = drops.copy()
-        trial[index] = drop
-        values, slopes = self.engine._local(self.sample)
-        response, _ = self.engine.response(self.engine.moving[index], index, trial[:, None], np.asarray([flow]),
-                                           self.sample, values, slopes)
-        return float(response[0])
 
-    # -- a law without a root -----------------------------------------------------------------------
+        def excess(drop: Array, number: int = number, trial: Array = trial) -> Array:
+            trial[number] = drop
+            carried, _, _ = engine.carried(number, trial, flow, samples)
+            return np.where(np.isnan(carried), np.copysign(np.inf, drop), carried - flow)
 
-    def _settle(self, flow: float, drops: Array) -> bool:
-        """True when every law is met; a jump is settled on its lower side and remembered."""
-        for index, element in enumerate(self.engine.moving):
-            carried = self._carried(index, float(drops[index]), flow, drops)
-            if abs(carried - flow) <= LAW_TOLERANCE * abs(flow):
-                continue
-            if isinstance(element, Layer) or not isinstance(element, Group):
-                return False
-            self._take_lower(index, element, flow, drops)
-        return True
+        drops[number] = _root(excess, np.where(down, -span, 0.0), np.where(up, span, 0.0))
+    return drops
 
-    def _take_lower(self, index: int, group: Group, flow: float, drops: Array) -> None:
-        drop = float(drops[index])
-        either_side = []
-        for shift in (-1e-9, 1e-9):
-            moved = drop * (1.0 + shift)
-            either_side.append(self._carried(index, moved, flow, drops) / moved)
-        area = float(self.engine._full(self.engine.chain.surfaces[group.surface].area)[self.at])
-        lower, upper = (side / area for side in sorted(either_side))
-        film = group.branches[0].name
-        size = self.engine.size
-        mask = self.engine.jumps.setdefault(film, np.zeros(size, dtype=bool))
-        mask[self.at] = True
-        sides = self.engine.jump_sides.setdefault(film, (np.full(size, np.nan), np.full(size, np.nan)))
-        sides[0][self.at], sides[1][self.at] = lower, upper
-        self._close_with(index, lower * area)
 
-    def _close_with(self, index: int, conductance: float) -> None:
-        """Close the circuit with one element held at a conductance."""
-        rest = self.engine.still[self.at] + 1.0 / conductance
-        others = [place for place in range(len(self.engine.moving)) if place != index]
-        flow = float(self.engine.flow[self.at])
-        for _ in range(BISECTIONS):
-            drops = self._drops_of(others, flow)
-            if drops is None:
-                return
-            carried_rest = rest + float(drops[others].sum()) / flow
-            following = self.difference / carried_rest
-            if following == flow:
-                break
-            flow = following
-        drops[index] = flow / conductance
-        self.engine.flow[self.at] = flow
-        self.engine.drops[:, self.at] = drops
+def _root(excess: Excess, low: Array, high: Array) -> Array:
+    """Where a rising function passes zero between two bounds, or the bound at which it comes nearest.
 
-    def _drops_of(self, places: list[int], flow: float) -> Array | None:
-        drops = np.zeros(len(self.engine.moving))
-        for index in places:
-            found = self._drop(index, flow, drops)
-            if found is None:
-                return None
-            drops[index] = found
-        return drops
+    Interpolation kept inside the bracket, and a halving whenever two passes did not halve it.
+    """
+    at_low, at_high = excess(low), excess(high)
+    # A law without a slope at no drop (0 carried at 0) still has its root above it.
+    below, above = at_low >= 0.0, at_high <= 0.0
+    for number in range(PASSES):
+        open_places = (np.abs(high - low) > WIDTH * np.maximum(np.abs(low), np.abs(high))) & ~below & ~above
+        if not open_places.any():
+            break
+        middle = 0.5 * (low + high)
+        if number % 3 != 2:
+            line = low - at_low * (high - low) / (at_high - at_low)
+            edge = 1e-3 * (high - low) if number % 3 == 0 else WIDTH * (high - low)
+            line = np.clip(line, low + edge, high - edge)
+            middle = np.where(np.isfinite(line), line, middle)
+        value = excess(middle)
+        rises = value > 0.0
+        high, at_high = np.where(rises & open_places, middle, high), np.where(rises & open_places, value, at_high)
+        low, at_low = np.where(~rises & open_places, middle, low), np.where(~rises & open_places, value, at_low)
+    nearest = np.where(np.abs(at_low) <= np.abs(at_high), low, high)
+    return np.where(below, low, np.where(above, high, nearest))
+
+
+# --- a law without a root ---------------------------------------------------------------------------
+
+
+def _hold_lower_sides(engine: Engine, samples: Array) -> bool:
+    """Hold films that jump at the bracketed drop on their lower side; False when none does."""
+    held = False
+    flow, drops = engine.flow[samples], np.take(engine.drops, samples, axis=1)
+    for number, element in enumerate(engine.moving):
+        if not isinstance(element, Group):
+            continue
+        for branch in element.branches:
+            held |= _hold(engine, element, branch, samples, drops[number], flow)
+    return held
+
+
+def _hold(engine: Engine, group: Group, branch: Branch, samples: Array, drop: Array, flow: Array) -> bool:
+    sign = -1.0 if group.side == "inside" else 1.0
+    bulk = engine.full(group.bulk)[samples]
+    flux = np.abs(flow) / engine.areas[group.name][samples]
+    sides = []
+    for shift in (-JOINT_SHIFT, JOINT_SHIFT):
+        surface = bulk + sign * drop * (1.0 + shift)
+        coefficient, _ = engine.film(group, branch, samples, surface, flux, False)
+        choice = engine.choice(group, branch, samples, {group.surface_temperature: surface, group.flux: flux})
+        sides.append((coefficient, choice))
+    (before, choice_before), (after, choice_after) = sides
+    jumps = np.abs(after - before) > JOINT_GAP * np.abs(before)
+    if not jumps.any():
+        return False
+    first_is_lower = before <= after
+    lower, upper = np.where(first_is_lower, before, after), np.where(first_is_lower, after, before)
+    choice = np.where(first_is_lower, choice_before, choice_after)
+    low, high = engine.jump_sides.setdefault(branch.name, (np.full(engine.size, np.nan), np.full(engine.size, np.nan)))
+    low[samples[jumps]], high[samples[jumps]] = lower[jumps], upper[jumps]
+    by_choice = jumps & (choice_before != choice_after)
+    chosen = engine.held_choice.setdefault(branch.name, np.full(engine.size, -1))
+    chosen[samples[by_choice]] = choice[by_choice]
+    value = engine.held_value.setdefault(branch.name, np.full(engine.size, np.nan))
+    within = jumps & ~by_choice
+    value[samples[within]] = lower[within]
+    return True

@@ -120,7 +120,7 @@ def _film_checks(chain: Chain, case: str, solution: Solution, group: Group, bran
                                   case, that, figure, limit_text, surface, "K", "range", state_word, because,
                                   state.fluid_name, "independent library"))
 
-    if fluid.has_vapour_pressure or pressure is None:
+    if fluid.has_vapour_pressure:
         boiling = fluid.saturation_temperature()
         if phase == "liquid":
             add("boils", "T_s < T_sat", boiling, boiling is not None and surface < boiling, "<",
@@ -163,6 +163,9 @@ def assumptions_of(chain: Chain, solutions: Mapping[str, Solution]) -> tuple[Run
         if not state.pressure and state.fluid.text.kind == "name":
             say(f"stream {state.name}/saturated", f"Properties of {state.name} are those of the saturated liquid.",
                 "no pressure is stated; checks against boiling at the wall cannot be evaluated", f"stream {state.name}")
+        if state.fluid.text.kind != "name":
+            say(f"stream {state.name}/vapour pressure", f"Boiling at the wall is not checked for {state.name}.",
+                "its fluid has no vapour pressure", f"stream {state.name}")
         if not state.phase:
             solution = solutions[SERVICE]
             pressure = solution.number(state.pressure) if state.pressure else None

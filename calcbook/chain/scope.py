@@ -84,6 +84,9 @@ class Scope:
         if value is None:
             return ""
         kind = vocabulary()[kind_name]
+        if value.is_broken or value.symbol in self.calculation.broken:
+            # its fault is told; the chain goes on to its other faults as if the figure were there
+            return self.constant(f"unread {kind.name}", float("nan"), kind.dimension)
         if value.symbol:
             return self._named(value, kind, owner, key)
         return self._literal(value, kind, owner, key)
@@ -105,7 +108,7 @@ class Scope:
     def _derived(self, value: Value, kind: QuantityKind) -> str:
         name = f"derived/{value.symbol}"
         if name not in self.dimensions:
-            return ""
+            return self.constant(f"unread {kind.name}", float("nan"), kind.dimension)
         if self.dimensions[name] != kind.dimension:
             self.collector.add("unit-dimension", value.place, f"`{value.symbol}` is no {kind.name}",
                                found=si_unit(self.dimensions[name]), expected=kind.unit)

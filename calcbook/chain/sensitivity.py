@@ -11,172 +11,195 @@ from collections.abc import Mapping
 import numpy as np
 
 from calcbook.chain.circuit import branch_coefficient
-from calcbook.chain.solve import _Engine, _solved
-from calcbook.chain.types import Chain, Group, Layer
-from calcbook.library.operations import run
+from calcbook.chain.solve import Solution, outward, solve
+from calcbook.chain.types import CLEAN, Branch, Chain, Group, Layer
+from calcbook.library.operations import Slopes, run
 
 Array = np.ndarray
+ONE = np.ones(())
+INPUT, UNKNOWN = "input ", "unknown "
+Line = dict[str, Array]
 
 
-def derivatives(chain: Chain, inputs: Mapping[str, Array], condition: str, wanted: tuple[str, ...]
-                ) -> dict[str, dict[str, Array]]:
-    """Slopes of results (ids of steps) with respect to every input, SI units, on arrays.
+def derivatives(chain: Chain, inputs: Mapping[str, Array], condition: str, wanted: tuple[str, ...],
+                solution: Solution | None = None) -> dict[str, dict[str, Array]]:
+    """Slopes of results (ids of steps) with respect to every input, SI units, in the samples' shape.
 
-    A result that does not depend on an input has no entry for it.
+    A result that does not depend on an input has no entry for it. ``solution`` is that of the same inputs
+    and condition, where it is there already.
     """
-    return _Sensitivity(chain, inputs, condition).slopes_of(wanted)
+    if solution is None:
+        solution = solve(chain, inputs, condition)
+    shape = solution.converged.shape
+    result: dict[str, dict[str, Array]] = {name: {} for name in wanted}
+    with np.errstate(all="ignore"):
+        for samples in _alike(solution):
+            traced = _Trace(chain, inputs, condition, solution, samples).slopes_of(wanted)
+            for name, slopes in traced.items():
+                for key, slope in slopes.items():
+                    whole = result[name].setdefault(key, np.zeros(shape))
+                    whole.reshape(-1)[samples] = slope
+    return result
 
 
-class _Sensitivity:
-    def __init__(self, chain: Chain, inputs: Mapping[str, Array], condition: str):
+def _alike(solution: Solution) -> list[Array]:
+    """The samples in groups that use the same methods and hold the same films at a joint."""
+    size = solution.converged.size
+    rows = [choice.ravel() for choice in solution.chosen.values()]
+    rows += [mask.ravel().astype(int) for mask in solution.jumps.values()]
+    if not rows:
+        return [np.arange(size)]
+    _, group = np.unique(np.stack(rows), axis=1, return_inverse=True)
+    return [np.flatnonzero(group.ravel() == number) for number in range(int(group.max()) + 1)]
+
+
+class _Trace:
+    """Every step once more at the solution, with every input and every unknown as a seed."""
+
+    def __init__(self, chain: Chain, inputs: Mapping[str, Array], condition: str, solution: Solution, samples: Array):
         self.chain = chain
-        self.engine = _Engine(chain, inputs, condition, {})
-        self.engine.solve()
-        self.inputs = tuple(inputs)
+        self.samples = samples
+        self.solution = solution
+        self.condition = condition
+        self.shape = solution.converged.shape
+        self.values: dict[str, Array] = dict(chain.constants)  # type: ignore[arg-type]
+        self.slopes: Slopes = {}
+        for name, value in inputs.items():
+            self.values[name] = self._part(np.asarray(value, dtype=float))
+            self.slopes[name] = {INPUT + name: ONE}
 
-    def slopes_of(self, wanted: tuple[str, ...]) -> dict[str, dict[str, Array]]:
-        engine = self.engine
-        # A second engine walks the same way with every input as a seed, at the state already found.
-        traced = _Engine(self.chain, {name: engine.values[name] for name in self.inputs}, engine.condition, {})
-        for name in self.inputs:
-            traced.slopes[name] = {f"input {name}": np.ones(())}
-        run(self.chain.steps, traced.values, traced.slopes)
-        if engine.condition == "clean":
+    def _part(self, value: Array) -> Array:
+        if value.ndim == 0:
+            return value
+        return np.ascontiguousarray(np.broadcast_to(value, self.shape)).reshape(-1)[self.samples]
+
+    def _solved(self, name: str) -> Array:
+        return self._part(np.asarray(self.solution.values[name]))
+
+    def slopes_of(self, wanted: tuple[str, ...]) -> dict[str, Line]:
+        """Total slopes of the wanted steps by input id."""
+        run(self.chain.steps, self.values, self.slopes)
+        if self.condition == CLEAN:
             for element in self.chain.elements:
                 if isinstance(element, Layer) and element.kind == "fouling":
-                    traced.values[element.resistance] = np.asarray(0.0)
-                    traced.slopes.pop(element.resistance, None)
-        if not self.chain.has_temperatures:
-            self._films(traced)
-            run(self.chain.circuit, traced.values, traced.slopes)
-            return self._collected(traced, wanted, {})
-        unknown_slopes = self._closing(traced)
-        run(self.chain.circuit, traced.values, traced.slopes)
-        return self._collected(traced, wanted, unknown_slopes)
+                    self.values[element.resistance] = np.asarray(0.0)
+                    self.slopes.pop(element.resistance, None)
+        moved: dict[str, Line] = {}
+        if self.chain.has_temperatures:
+            moved = self._moved(self._laws())
+        else:
+            for group in (self.chain.inner, self.chain.outer):
+                for branch in group.branches:
+                    self._film(group, branch)
+        run(self.chain.circuit, self.values, self.slopes)
+        return {name: self._total(name, moved) for name in wanted}
 
-    def _films(self, traced: _Engine) -> None:
-        everything = np.arange(traced.size)
-        for group in (self.chain.inner, self.chain.outer):
-            for branch in group.branches:
-                self._trace_film(traced, group, branch, everything)
+    def _total(self, name: str, moved: Mapping[str, Line]) -> Line:
+        total: Line = {}
+        for seed, slope in self.slopes.get(name, {}).items():
+            if seed in moved:
+                total = _added(total, moved[seed], slope)
+            else:
+                total = _added(total, {seed: slope})
+        return {seed.removeprefix(INPUT): np.broadcast_to(slope, self.samples.shape) for seed, slope in total.items()}
 
-    def _trace_film(self, traced: _Engine, group: Group, branch, samples: Array) -> None:  # type: ignore[no-untyped-def]
-        choice = int(np.asarray(self.engine.chosen.get(branch.name, np.zeros(1))).ravel()[0])
-        candidate = branch.candidates[choice]
-        for step in (*branch.choice_steps, *candidate.steps):
-            if step.id not in traced.slopes:
-                run([step], traced.values, traced.slopes)
-        held = branch_coefficient(group, branch.name)
-        traced.values[held] = traced.values[candidate.coefficient]
-        if candidate.coefficient in traced.slopes:
-            traced.slopes[held] = traced.slopes[candidate.coefficient]
+    # -- the laws -----------------------------------------------------------------------------------
 
-    def _closing(self, traced: _Engine) -> dict[str, dict[str, Array]]:
-        """Derivatives of Q and of every element's drop with respect to the inputs."""
-        names = ["Q", *(f"drop {index}" for index in range(len(self.chain.elements)))]
-        residuals = self._residuals(traced)
-        size = len(names)
-        matrix = np.zeros((1, size, size))
-        seeds = [f"input {name}" for name in self.inputs]
-        right = np.zeros((size, len(seeds)))
-        for row, slopes in enumerate(residuals):
-            for column, name in enumerate(names):
-                matrix[0, row, column] = float(np.asarray(slopes.get(name, 0.0)).ravel()[0])
-            for column, seed in enumerate(seeds):
-                right[row, column] = -float(np.asarray(slopes.get(seed, 0.0)).ravel()[0])
-        result: dict[str, dict[str, Array]] = {name: {} for name in names}
-        for column, seed in enumerate(seeds):
-            if not right[:, column].any():
-                continue
-            moved = _solved(matrix, right[None, :, column])[0]
-            for row, name in enumerate(names):
-                result[name][seed] = np.asarray(moved[row])
-        return result
-
-    def _residuals(self, traced: _Engine) -> list[dict[str, Array]]:
-        """Slopes of the closing equation and of every element's law, in drops, Q and inputs."""
-        total: dict[str, Array] = {}
+    def _laws(self) -> list[Line]:
+        """Slopes of the summed drops, then of every element's heat flow less Q, in unknowns and inputs."""
+        total: Line = {}
         laws = []
-        temperature = dict(traced.slopes.get(self.chain.inner.bulk, {}))
-        for index, element in enumerate(self.chain.elements):
-            seed = f"drop {index}"
-            total[seed] = np.ones(())
-            laws.append(self._law(traced, element, index, temperature))
-            temperature = _added(temperature, {seed: np.asarray(-1.0)})
-        for bulk, sign in ((self.chain.inner.bulk, -1.0), (self.chain.outer.bulk, 1.0)):
-            total = _added(total, {seed: sign * slope for seed, slope in traced.slopes.get(bulk, {}).items()})
-        return [total, *laws]
+        temperature = dict(self.slopes.get(self.chain.inner.bulk, {}))
+        for number, element in enumerate(self.chain.elements):
+            seed = f"{UNKNOWN}{number + 1}"
+            total[seed] = ONE
+            law = self._group(element, seed) if isinstance(element, Group) else self._layer(element, seed, temperature)
+            laws.append(law)
+            temperature = _added(temperature, {seed: -ONE})
+        total = _added(total, self.slopes.get(self.chain.inner.bulk, {}), -ONE)
+        return [_added(total, self.slopes.get(self.chain.outer.bulk, {})), *laws]
 
-    def _law(self, traced: _Engine, element, index: int, before: dict[str, Array]) -> dict[str, Array]:  # type: ignore[no-untyped-def]
-        """Slopes of (drop / resistance − Q), or of the group's heat flow − Q."""
-        if isinstance(element, Group):
-            return self._group_law(traced, element, index)
-        seed = f"drop {index}"
-        if isinstance(element, Layer) and element.first_temperature:
-            values = traced.values
-            values[element.first_temperature] = self.engine.values[element.first_temperature]
-            values[element.second_temperature] = self.engine.values[element.second_temperature]
-            traced.slopes[element.first_temperature] = before
-            traced.slopes[element.second_temperature] = _added(before, {seed: np.asarray(-1.0)})
-            run(element.steps, values, traced.slopes)
-        area = self.chain.surfaces[element.surface].area
-        resistance = traced.values[element.resistance] / traced.values[area]
-        flow = self._flow
-        slopes = {seed: np.ones(()), "Q": -resistance}
-        for name, slope in traced.slopes.get(element.resistance, {}).items():
-            slopes = _added(slopes, {name: -flow * slope / traced.values[area]})
-        for name, slope in traced.slopes.get(area, {}).items():
-            slopes = _added(slopes, {name: flow * resistance * slope / traced.values[area]})
-        return slopes
+    def _layer(self, layer: Layer, seed: str, before: Line) -> Line:
+        """Slopes of drop - Q*R/A."""
+        if layer.first_temperature:
+            for name, line in ((layer.first_temperature, before), (layer.second_temperature, _added(before, {seed: -ONE}))):
+                self.values[name] = self._solved(name)
+                self.slopes[name] = line
+            run(layer.steps, self.values, self.slopes)
+        flow, area = self._solved("solution/Q"), self.chain.surfaces[layer.surface].area
+        resistance = self.values[layer.resistance] / self.values[area]
+        law = {seed: ONE, f"{UNKNOWN}0": -resistance}
+        law = _added(law, self.slopes.get(layer.resistance, {}), -flow / self.values[area])
+        return _added(law, self.slopes.get(area, {}), flow * resistance / self.values[area])
 
-    @property
-    def _flow(self) -> Array:
-        return np.asarray(self.engine.values["solution/Q"])
-
-    def _group_law(self, traced: _Engine, group: Group, index: int) -> dict[str, Array]:
-        seed = f"drop {index}"
-        outward = -1.0 if group.side == "inside" else 1.0
-        values, slopes = traced.values, traced.slopes
-        values[group.surface_temperature] = self.engine.values[group.surface_temperature]
-        values[group.flux] = self.engine.values[group.flux]
-        slopes[group.surface_temperature] = _added(slopes.get(group.bulk, {}), {seed: np.asarray(outward)})
+    def _group(self, group: Group, seed: str) -> Line:
+        """Slopes of the heat flow through the branches less Q."""
+        sign = outward(group)
+        values, slopes = self.values, self.slopes
         area = self.chain.surfaces[group.surface].area
-        flow = self._flow
-        sign = np.sign(flow)
-        slopes[group.flux] = _added({"Q": sign / values[area]},
-                                    {name: -np.abs(flow) * slope / values[area] ** 2
-                                     for name, slope in slopes.get(area, {}).items()})
-        law: dict[str, Array] = {"Q": np.asarray(-1.0)}
+        flow = self._solved("solution/Q")
+        values[group.surface_temperature] = self._solved(group.surface_temperature)
+        values[group.flux] = self._solved(group.flux)
+        slopes[group.surface_temperature] = _added(slopes.get(group.bulk, {}), {seed: np.asarray(sign)})
+        slopes[group.flux] = _added({f"{UNKNOWN}0": np.sign(flow) / values[area]}, slopes.get(area, {}),
+                                    -np.abs(flow) / values[area] ** 2)
+        law: Line = {f"{UNKNOWN}0": -ONE}
         for branch in group.branches:
-            self._trace_film(traced, group, branch, np.arange(traced.size))
+            self._film(group, branch)
             held = branch_coefficient(group, branch.name)
-            coefficient = values[held]
-            # Heat flows from the fluid to the surface inside, from the surface to the fluid outside.
-            driving = outward * (values[group.surface_temperature] - values[branch.reference])
-            by_drop = _added({name: outward * slope for name, slope in slopes[group.surface_temperature].items()},
-                             {name: -outward * slope for name, slope in slopes.get(branch.reference, {}).items()})
-            law = _added(law, {name: coefficient * values[area] * slope for name, slope in by_drop.items()})
-            law = _added(law, {name: slope * values[area] * driving for name, slope in slopes.get(held, {}).items()})
-            law = _added(law, {name: coefficient * slope * driving for name, slope in slopes.get(area, {}).items()})
+            driving = sign * (values[group.surface_temperature] - values[branch.reference])
+            law = _added(law, slopes[group.surface_temperature], sign * values[held] * values[area])
+            law = _added(law, slopes.get(branch.reference, {}), -sign * values[held] * values[area])
+            law = _added(law, slopes.get(held, {}), values[area] * driving)
+            law = _added(law, slopes.get(area, {}), values[held] * driving)
         return law
 
-    def _collected(self, traced: _Engine, wanted: tuple[str, ...], unknown: dict[str, dict[str, Array]]
-                   ) -> dict[str, dict[str, Array]]:
-        """Total derivatives of the wanted steps: direct, and through Q and the drops."""
-        result: dict[str, dict[str, Array]] = {}
-        for name in wanted:
-            total: dict[str, Array] = {}
-            for seed, slope in traced.slopes.get(name, {}).items():
-                if seed in unknown:
-                    total = _added(total, {other: slope * moved for other, moved in unknown[seed].items()})
-                else:
-                    total = _added(total, {seed: slope})
-            result[name] = {seed.removeprefix("input "): slope for seed, slope in total.items()}
-        return result
+    def _film(self, group: Group, branch: Branch) -> None:
+        choice = self.solution.chosen.get(branch.name)
+        candidate = branch.candidates[int(choice.reshape(-1)[self.samples[0]]) if choice is not None else 0]
+        waiting = [step for step in candidate.steps if step.id not in self.values]
+        run(waiting, self.values, self.slopes)
+        held = branch_coefficient(group, branch.name)
+        # The solution's own figure: a film held at a joint has one that its law does not give, and no slope.
+        self.values[held] = self._solved(held)
+        law = self.values[candidate.coefficient]
+        if candidate.coefficient in self.slopes and bool(np.all(np.abs(self.values[held] - law) <= 1e-9 * np.abs(law))):
+            self.slopes[held] = self.slopes[candidate.coefficient]
+
+    # -- the unknowns -------------------------------------------------------------------------------
+
+    def _moved(self, laws: list[Line]) -> dict[str, Line]:
+        """Slopes of Q and of every drop with respect to the inputs, sample by sample."""
+        names = [f"{UNKNOWN}{number}" for number in range(len(laws))]
+        seeds = [INPUT + name for name in self.chain.inputs if any(INPUT + name in law for law in laws)]
+        count = len(self.samples)
+        matrix = np.zeros((count, len(names), len(names)))
+        right = np.zeros((count, len(names), max(len(seeds), 1)))
+        for row, law in enumerate(laws):
+            for column, name in enumerate(names):
+                matrix[:, row, column] = law.get(name, 0.0)
+            for column, seed in enumerate(seeds):
+                right[:, row, column] = -np.asarray(law.get(seed, 0.0))
+        moved = _solved(matrix, right)
+        return {name: {seed: moved[:, row, column] for column, seed in enumerate(seeds)} for row, name in enumerate(names)}
 
 
-def _added(first: Mapping[str, Array], second: Mapping[str, Array]) -> dict[str, Array]:
+def _solved(matrix: Array, right: Array) -> Array:
+    """Solutions of many small systems; NaN where a matrix is singular or not known."""
+    result = np.full(right.shape, np.nan)
+    whole = np.isfinite(matrix).all(axis=(1, 2))
+    for place in np.flatnonzero(whole):
+        try:
+            result[place] = np.linalg.solve(matrix[place], right[place])
+        except np.linalg.LinAlgError:
+            continue
+    return result
+
+
+def _added(first: Mapping[str, Array], second: Mapping[str, Array], factor: Array = ONE) -> Line:
+    """The sum of two linear forms, the second one times a factor."""
     total = dict(first)
     for name, slope in second.items():
-        total[name] = total[name] + slope if name in total else slope
+        part = factor * slope
+        total[name] = total[name] + part if name in total else part
     return total

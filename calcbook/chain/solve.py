@@ -22,11 +22,10 @@ from calcbook.library.operations import Slopes, run
 Array = np.ndarray
 # Samples solved together: arrays of this size stay in the processor's cache.
 PIECE = 8192
-# Two sides of a joint are apart when they differ by more than rounding.
-JOINT_SHIFT = 1e-9
-JOINT_GAP = 1e-7
 # A law that is met less well than this at the end has no answer there.
 RESIDUAL_TOLERANCE = 1e-10
+# Four roundings of a temperature, relative: so well is a surface temperature known.
+RESOLUTION = 1e-15
 ONE = np.ones(())
 
 
@@ -60,10 +59,12 @@ def solve(chain: Chain, inputs: Mapping[str, Array], condition: str,
     """
     shape = np.broadcast_shapes(*(np.shape(value) for value in inputs.values()))
     size = int(np.prod(shape, dtype=int))
+    if size == 0:
+        raise ValueError("there are no samples to solve")
     flat = {name: _flat(value, shape) for name, value in inputs.items()}
     joined = _Joined(condition, shape, size)
     with np.errstate(all="ignore"):
-        for start in range(0, max(size, 1), PIECE):
+        for start in range(0, size, PIECE):
             piece = slice(start, min(start + PIECE, size))
             part = {name: value[piece] if value.ndim else value for name, value in flat.items()}
             engine = Engine(chain, part, condition, forced or {}, 1 if shape == () else piece.stop - start)
@@ -184,7 +185,8 @@ class Engine:
         run(self.chain.circuit, self.values)
 
     def _bracket_what_is_open(self) -> None:
-        open_samples = np.flatnonzero(~(self.converged & (self._residual() <= RESIDUAL_TOLERANCE)))
+        met = self._residual() <= RESIDUAL_TOLERANCE + 4.0 * self.resolution(self.drops, self.everything)
+        open_samples = np.flatnonzero(~(self.converged & met))
         if not len(open_samples):
             return
         self.converged[open_samples] = False
@@ -236,6 +238,16 @@ class Engine:
         self.difference = self.full(self.chain.inner.bulk) - self.full(self.chain.outer.bulk)
         self.flow = np.zeros(self.size)
         self.drops = np.zeros((len(self.moving), self.size))
+
+    def resolution(self, drops: Array, samples: Array) -> Array:
+        """How well the drops of films follow from temperatures, relative to the smallest of them."""
+        if self.foreign:
+            return np.zeros(len(samples))
+        smallest = np.full(len(samples), np.inf)
+        for element in self.moving:
+            if isinstance(element, Group):
+                smallest = np.minimum(smallest, np.abs(drops[self.numbers[element.name]]))
+        return RESOLUTION * self.full(self.chain.inner.bulk)[samples] / smallest
 
     # -- plans --------------------------------------------------------------------------------------
 
@@ -361,18 +373,18 @@ class Engine:
 
     def _carried_by_films(self, group: Group, number: int, drops: Array, flow: Array, samples: Array, area: Array,
                           wants_slopes: bool) -> tuple[Array, dict[int, Array], Array]:
-        outward = _outward(group)
+        sign = outward(group)
         drop = drops[number]
         bulk = self.at(group.bulk, samples)
         total, by_drop, by_flow = np.zeros(len(samples)), np.zeros(len(samples)), np.zeros(len(samples))
         for branch in group.branches:
-            coefficient, slopes = self.film(group, branch, samples, bulk + outward * drop, np.abs(flow) / area, wants_slopes)
-            driving = drop if branch.reference == group.bulk else drop + outward * (bulk - self.at(branch.reference, samples))
+            coefficient, slopes = self.film(group, branch, samples, bulk + sign * drop, np.abs(flow) / area, wants_slopes)
+            driving = drop if branch.reference == group.bulk else drop + sign * (bulk - self.at(branch.reference, samples))
             total = total + coefficient * area * driving
             if wants_slopes:
                 by_drop = by_drop + coefficient * area
                 if group.surface_temperature in slopes:
-                    by_drop = by_drop + slopes[group.surface_temperature] * (outward * area * driving)
+                    by_drop = by_drop + slopes[group.surface_temperature] * (sign * area * driving)
                 if group.flux in slopes:
                     by_flow = by_flow + slopes[group.flux] * np.sign(flow) * driving
         return total, {number: by_drop}, by_flow
@@ -420,7 +432,7 @@ class Engine:
         for group in (self.chain.inner, self.chain.outer):
             if self.chain.has_temperatures:
                 drop = self._drop(group)
-                self.values[group.surface_temperature] = self._as_input(self.full(group.bulk) + _outward(group) * drop)
+                self.values[group.surface_temperature] = self._as_input(self.full(group.bulk) + outward(group) * drop)
                 self.values[group.flux] = self._as_input(np.abs(self.flow) / self.areas[group.name])
             for branch in group.branches:
                 self._finish_film(group, branch)
@@ -437,55 +449,95 @@ class Engine:
         return self.flow * self.fixed[element.name]
 
     def _finish_film(self, group: Group, branch: Branch) -> None:
+        self._run_following(branch.choice_steps, group)
         given = {name: self.values[name] for name in _moving(group) if name in self.values}
         choice = self.choice(group, branch, self.everything, given)
         if branch.name not in self.forced:
             self.chosen[branch.name] = choice
-        self._stay(branch.choice_steps, _moving(group))
-        self._rerun(branch.choice_steps, group, self.values)
-        methods = np.unique(choice)
-        if len(methods) == 1:
-            candidate = self.forced.get(branch.name) or branch.candidates[int(methods[0])]
-            self._stay(candidate.steps, _moving(group))
-            self._rerun(candidate.steps, group, self.values)
+        if (choice == choice[0]).all():
+            candidate = self.forced.get(branch.name) or branch.candidates[int(choice[0])]
+            self._run_following(candidate.steps, group)
             coefficient = self.values[candidate.coefficient]
         else:
-            coefficient = np.full(self.size, np.nan)
-            for method in methods:
-                candidate = branch.candidates[int(method)]
-                self._stay(candidate.steps, _moving(group))
-                self._finish_part(group, candidate, choice == method)
-                mask = choice == method
-                coefficient[mask] = np.broadcast_to(self.values[candidate.coefficient], (self.size,))[mask]
+            coefficient = self._finish_side_by_side(group, branch, choice)
         held = self.held_value.get(branch.name)
         if held is not None:
             coefficient = self._as_input(np.where(np.isfinite(held), held, coefficient))
         self.values[branch_coefficient(group, branch.name)] = coefficient
 
-    def _rerun(self, steps: tuple[ChainStep, ...], group: Group, values: dict[str, Array]) -> None:
-        follows = set(_moving(group))
-        for step in steps:
-            if any(bound in follows for bound in step.inputs.values()):
-                follows.add(step.id)
-                run((step,), values)
+    def _run_following(self, steps: tuple[ChainStep, ...], group: Group) -> None:
+        follows = self._stay(steps, _moving(group))
+        run(tuple(step for step in steps if step.id in follows), self.values)
 
-    def _finish_part(self, group: Group, candidate: Candidate, mask: Array) -> None:
-        """Evaluate a candidate for the samples that chose it; its own figures are NaN for the others."""
-        samples = np.flatnonzero(mask)
-        names = {bound for step in candidate.steps for bound in step.inputs.values()}
-        part = {name: self.at(name, samples) for name in names if name in self.values}
-        before = set(self.values)
-        self._rerun(candidate.steps, group, part)
-        for step in candidate.steps:
-            if step.id in before and step.id not in self.partial:
-                continue
-            value = np.asarray(part[step.id])
-            if step.id not in self.partial:
-                self.partial.add(step.id)
-                self.values[step.id] = (np.zeros(self.size, dtype=bool) if value.dtype == bool
-                                        else np.full(self.size, np.nan))
-            self.values[step.id][samples] = value
+    def _finish_side_by_side(self, group: Group, branch: Branch, choice: Array) -> Array:
+        """Evaluate every method for the samples that chose it; its own figures are NaN for the others."""
+        coefficient = np.full(self.size, np.nan)
+        shared = {step.id for step in branch.choice_steps}
+        gathered: dict[str, Array] = {}
+        for method in np.unique(choice):
+            candidate = branch.candidates[int(method)]
+            samples = np.flatnonzero(choice == method)
+            follows = self._stay(candidate.steps, _moving(group))
+            names = {bound for step in candidate.steps for bound in step.inputs.values()} - follows | set(_moving(group))
+            part = {name: self.at(name, samples) for name in names | {candidate.coefficient} if name in self.values}
+            following = tuple(step for step in candidate.steps if step.id in follows)
+            run(following, part)
+            coefficient[samples] = part[candidate.coefficient]
+            for step in following:
+                if step.id in shared:
+                    continue
+                value = np.asarray(part[step.id])
+                if step.id not in gathered:
+                    gathered[step.id] = np.full(self.size, False if value.dtype == bool else np.nan)
+                gathered[step.id][samples] = value
+        self.values.update(gathered)
+        return coefficient
+
+    def _residual(self) -> Array:
+        """Largest relative residual of the laws and of the summed drops, from the finished figures."""
+        worst = np.zeros(self.size)
+        summed, whole = self.flow * self.still - self.difference, np.abs(self.flow * self.still)
+        for element in self.moving:
+            drop = self._drop(element)
+            summed, whole = summed + drop, whole + np.abs(drop)
+            flow, weight = self._finished_flow(element, drop)
+            worst = np.maximum(worst, _relative(flow - self.flow, np.maximum(weight, np.abs(self.flow))))
+        worst = np.maximum(worst, _relative(summed, whole))
+        return np.where(np.isfinite(worst) & np.isfinite(self.flow), worst, np.inf)
+
+    def _finished_flow(self, element: Group | Layer, drop: Array) -> tuple[Array, Array]:
+        """Heat flow of a moving element from its finished figures, and the flows of its branches without sign."""
+        area = self.areas[element.name]
+        if isinstance(element, Layer):
+            flow = drop * area / self.full(element.resistance)
+            return flow, np.abs(flow)
+        total, weight = np.zeros(self.size), np.zeros(self.size)
+        surface, sign = self.full(element.surface_temperature), outward(element)
+        for branch in element.branches:
+            driving = drop if branch.reference == element.bulk else sign * (surface - self.full(branch.reference))
+            flow = self.full(branch_coefficient(element, branch.name)) * area * driving
+            total, weight = total + flow, weight + np.abs(flow)
+        return total, weight
 
     def _as_input(self, value: Array) -> Array:
         """A figure of the solution as steps take it: 0-d for a single record."""
         return value.reshape(()) if self.single else value
+
+
+def outward(group: Group) -> float:
+    """The sign with which the surface temperature follows a drop: inside it falls, outside it rises."""
+    return -1.0 if group.side == "inside" else 1.0
+
+
+def _moving(group: Group) -> tuple[str, str]:
+    return (group.surface_temperature, group.flux)
+
+
+def _given(group: Group, surface: Array | None, flux: Array | None) -> dict[str, Array]:
+    if surface is None or flux is None:
+        return {}
+    return {group.surface_temperature: surface, group.flux: flux}
+
+
+def _relative(residual: Array, scale: Array) -> Array:
+    return np.where(residual == 0.0, 0.0, np.abs(residual) / scale)

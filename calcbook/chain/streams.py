@@ -130,6 +130,8 @@ def _flow_kind(scope: Scope, flow: Value | None) -> str:
     """Mass flow, volume flow or speed, told apart by the unit; a fault when it is none of them."""
     if flow is None:
         return ""
+    if flow.is_broken or flow.symbol in scope.calculation.broken:
+        return "speed"
     if flow.symbol:
         given = scope.calculation.givens.get(flow.symbol)
         dim = given.value.quantity.dimension if given is not None and given.value.quantity else scope.dimensions.get(

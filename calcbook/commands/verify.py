@@ -20,7 +20,7 @@ def command(output: Path) -> None:
     Exit code 1 when a check point is not met.
     """
     from calcbook.book.verifying import verify
-    from calcbook.book.writing import write_whole
+    from calcbook.files import write_whole
     from calcbook.library import Library
     from calcbook.record.markdown import markdown
     from calcbook.record.software import software_line

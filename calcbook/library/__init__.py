@@ -44,6 +44,7 @@ class Library:
         self._situations: dict[str, Situation] = {}
         self._materials: dict[str, Material] = {}
         self._programs: dict[str, Program] = {}
+        self._house: dict[Path, str] | None = None
 
     def method(self, name: str) -> Method:
         """A method card by id. Raises ``Faults``: method-unknown, and every fault of the card."""
@@ -75,23 +76,42 @@ class Library:
 
     def names(self, kind: str) -> tuple[str, ...]:
         """The ids of every card of a kind (methods, situations, materials), in alphabetical order."""
-        found = {path.stem for folder in self._folders(kind) for path in folder.glob("*.yaml")}
-        return tuple(sorted(found))
+        built_in = {path.stem for path in (ROOT / kind).glob("*.yaml")}
+        return tuple(sorted(built_in | set(self._house_cards(kind))))
 
-    def _folders(self, kind: str) -> list[Path]:
-        folders = [ROOT / kind]
-        if self.house is not None:
-            folders.append(self.house)
-        return folders
+    def _house_cards(self, kind: str) -> dict[str, Path]:
+        """The book's own cards of a kind: what a card is, its first key says."""
+        if self.house is None:
+            return {}
+        if self._house is None:
+            self._house = {path: _first_key(path) for path in sorted(self.house.glob("*.yaml"))}
+        return {path.stem: path for path, key in self._house.items() if key == kind.removesuffix("s")}
 
     def _path(self, kind: str, name: str) -> tuple[Path, bool]:
-        for folder in self._folders(kind):
-            path = folder / f"{name}.yaml"
-            if name and "/" not in name and "\\" not in name and path.is_file():
-                return path, folder == self.house
-        singular = kind[:-1]
+        path = ROOT / kind / f"{name}.yaml"
+        if _is_plain(name) and path.is_file():
+            return path, False
+        house = self._house_cards(kind).get(name)
+        if house is not None:
+            return house, True
+        singular = kind.removesuffix("s")
         raise Faults([Fault(f"{singular}-unknown", Place(name), f"the library has no {singular} `{name}`", name,
                             f"a {singular} of `calcbook library`", nearest_names(name, self.names(kind)))])
+
+
+def _is_plain(name: str) -> bool:
+    """Whether a name stays in its folder."""
+    return bool(name) and all(character.isalnum() or character in "-_." for character in name)
+
+
+def _first_key(path: Path) -> str:
+    """The word before the first colon of a card's first line that is no comment."""
+    try:
+        lines = path.read_text(encoding="utf-8").splitlines()
+    except (OSError, UnicodeDecodeError):
+        return ""
+    first = next((line for line in lines if line.strip() and not line.lstrip().startswith("#")), "")
+    return first.partition(":")[0].strip()
 
 
 _library = Library()

@@ -249,4 +249,7 @@ def carry(step: Step, arguments: Mapping[str, Array], value: Array, slopes: Slop
 def _product(outer: Array, inner: Array) -> Array:
     """A product in which a zero outer slope stays zero, also where the inner one is infinite."""
     with np.errstate(invalid="ignore", over="ignore"):
-        return np.where((outer == 0.0) | (inner == 0.0), 0.0, outer * inner)
+        product = outer * inner
+        if np.isfinite(product).all():
+            return product
+        return np.where((outer == 0.0) | (inner == 0.0), 0.0, product)

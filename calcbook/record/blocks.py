@@ -26,7 +26,7 @@ class Paragraph:
 
 @dataclass(frozen=True, slots=True)
 class Table:
-    """Rows under named columns; every row has as many cells as there are columns. ``notes`` follow beneath."""
+    """Rows under named columns; every row has as many cells as there are columns. ``notes`` follow."""
 
     columns: tuple[str, ...]
     rows: tuple[tuple[str, ...], ...]

@@ -1,7 +1,7 @@
 """The digest of what was calculated: meaning of the file, cards used, results as they are displayed.
 
-SHA-256 of ``calcbook-digest-1``, a zero byte, and JSON (UTF-8, keys sorted, no spaces, no floats). Each of the
-three parts has its own digest beside the whole. Versions, platform and sign-offs stay outside.
+SHA-256 of ``calcbook-digest-1``, a zero byte, and JSON (UTF-8, keys sorted, no spaces, no floats). Each of
+the three parts has its own digest beside the whole. Versions, platform and sign-offs stay outside.
 """
 
 from __future__ import annotations
@@ -60,7 +60,10 @@ def displayed(solved: Solved) -> dict[str, list[str]]:
             text = in_report_unit(result.value, result.kind, solved.chain.calculation.report, RESULT_DIGITS)
             shown[f"{prefix}result {name}"] = [text, ""]
         for check in case.checks:
-            shown[f"{prefix}check {check.id} / {check.condition}"] = [f"{check.figure}; {check.limit}; {check.state}", ""]
+            shown[f"{prefix}check {check.id} / {check.condition}"] = [
+                f"{check.figure}; {check.limit}; {check.state}",
+                "",
+            ]
         for criterion in case.criteria:
             shown[f"{prefix}{criterion.id}"] = ["criterion met" if criterion.met else "criterion not met", ""]
     return shown

@@ -15,7 +15,7 @@ from calcbook.record.blocks import Block, Bullets, Code, Heading, Paragraph, Quo
 _LINE_ENDS = re.compile(r"\r\n|[\n\r\t\v\f\x1c\x1d\x1e\x85\u2028\u2029]")
 _HIDDEN = frozenset(("Cc", "Cf", "Cs"))
 _ALWAYS = frozenset("\\`*[~|")
-_LEADING = frozenset("#>+-=:")
+_LEADING = frozenset("#>+-=")
 _LEADING_NUMBER = re.compile(r"(\d{1,9})([.)])(?=\s|$)")
 
 
@@ -31,14 +31,14 @@ def _parts(block: Block) -> list[str]:
         case Heading(level=level, text=text):
             return [f"{'#' * level} {escaped(text)}".rstrip()]
         case Paragraph(text=text):
-            line = escaped(text)
+            line = escaped_line(text)
             return [line] if line else []
         case Table():
             return _table(block)
         case Bullets(items=items):
-            return ["\n".join(f"- {escaped(item)}".rstrip() for item in items)] if items else []
+            return ["\n".join(f"- {escaped_line(item)}".rstrip() for item in items)] if items else []
         case Quote(lines=lines):
-            return ["\n>\n".join(f"> {escaped(line)}".rstrip() for line in lines)] if lines else []
+            return ["\n>\n".join(f"> {escaped_line(line)}".rstrip() for line in lines)] if lines else []
         case Code(text=text):
             return [_fenced(text)]
     raise TypeError(f"{type(block).__name__} is no block")
@@ -47,7 +47,7 @@ def _parts(block: Block) -> list[str]:
 def _table(table: Table) -> list[str]:
     lines = [_row(table.columns), "|" + "---|" * len(table.columns)]
     lines += [_row(row) for row in table.rows]
-    notes = ["\n".join(f"- {escaped(note)}" for note in table.notes)] if table.notes else []
+    notes = ["\n".join(f"- {escaped_line(note)}" for note in table.notes)] if table.notes else []
     return ["\n".join(lines), *notes]
 
 
@@ -72,30 +72,36 @@ def _characters(text: str) -> str:
     if text.isascii() and text.isprintable():
         return text
     return "".join(
-        f"U+{ord(character):04X}" if unicodedata.category(character) in _HIDDEN else character for character in text
+        f"U+{ord(character):04X}" if unicodedata.category(character) in _HIDDEN else character
+        for character in text
     )
 
 
 def escaped(text: str) -> str:
-    """One line of text that a Markdown reader reads back as that text and nothing else."""
+    """A text for a cell or a heading: a Markdown reader reads back that text and nothing else."""
     line = visible(text)
     if line.isalnum():
         return line
-    marked = "".join(_escaped_character(line, place) for place in range(len(line)))
-    number = _LEADING_NUMBER.match(marked)
-    return f"{number[1]}\\{marked[number.end(1):]}" if number else marked
+    return "".join(_escaped_character(line, place) for place in range(len(line)))
+
+
+def escaped_line(text: str) -> str:
+    """A text that begins a line, where a few signs would open a list, a quote, a heading or a rule."""
+    line = escaped(text)
+    number = _LEADING_NUMBER.match(line)
+    if number:
+        return f"{number[1]}\\{line[number.end(1) :]}"
+    return f"\\{line}" if line[:1] in _LEADING else line
 
 
 def _escaped_character(line: str, place: int) -> str:
     character = line[place]
     following = line[place + 1 : place + 2]
-    first, last = place == 0, place == len(line) - 1
     if character.isalnum() or character == " ":
         return character
     needed = (
         character in _ALWAYS
-        or (first and character in _LEADING)
-        or (character == "#" and last)
+        or (character == "#" and place == len(line) - 1)
         or (character == "<" and not _opens_nothing(following))
         or (character == "&" and (following == "#" or following.isalnum()))
         or (character == "_" and not _inside_word(line, place))
@@ -115,7 +121,9 @@ def _inside_word(line: str, place: int) -> bool:
         before -= 1
     while after < len(line) - 1 and line[after + 1] == "_":
         after += 1
-    return before > 0 and after < len(line) - 1 and _is_letter(line[before - 1]) and _is_letter(line[after + 1])
+    return (
+        before > 0 and after < len(line) - 1 and _is_letter(line[before - 1]) and _is_letter(line[after + 1])
+    )
 
 
 def _is_letter(character: str) -> bool:

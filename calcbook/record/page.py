@@ -8,10 +8,9 @@ from dataclasses import dataclass
 from calcbook.calcfile import Calculation
 from calcbook.chain.outcome import CaseOutcome, CheckResult, Result, Solved
 from calcbook.chain.types import Chain
-from calcbook.library.cards import Material, Method, Situation, Source
+from calcbook.library.cards import Material, Method, Situation
 from calcbook.record.digest import Digest
 from calcbook.record.software import Software
-
 
 
 @dataclass(frozen=True)
@@ -64,6 +63,15 @@ class Page:
                 found.append(self.chain.library.material(card))
         return tuple(found)
 
+    def reference(self, card: str, cite: str) -> str:
+        """The id of a publication of a used card, or the text itself where the card does not list it."""
+        for used in self.cards():
+            if used.id == card:
+                for place, source in enumerate(used.sources, 1):
+                    if source.cite == cite:
+                        return reference_id(card, place)
+        return cite
+
     def methods(self) -> tuple[Method, ...]:
         """The method cards that were used."""
         return tuple(card for card in self.cards() if isinstance(card, Method))
@@ -84,8 +92,6 @@ def counted(count: int, singular: str, plural: str) -> str:
     return f"{count} {singular if count == 1 else plural}"
 
 
-def source_text(source: Source) -> str:
-    """A publication with what it supports and its standing."""
-    supports = f"; for {source.supports}" if source.supports else ""
-    standing = f"; standing: {source.standing}" if source.standing else ""
-    return f"{source.cite}{supports}{standing}"
+def reference_id(card: str, place: int) -> str:
+    """How a publication of a card is cited; it does not move when another card comes or goes."""
+    return f"{card} / {place}"

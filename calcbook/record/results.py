@@ -1,4 +1,4 @@
-"""The results file: what the record shows, for programs. SI values with units beside, 10 significant digits."""
+"""The results file: what the record shows, for programs. SI values with units, 10 significant digits."""
 
 from __future__ import annotations
 
@@ -19,7 +19,10 @@ Data = dict[str, object]
 
 def results_text(solved: Solved, digest: Digest, software: Software) -> str:
     """The text of the results file, one newline at the end."""
-    return json.dumps(results_data(solved, digest, software), indent=1, ensure_ascii=False, allow_nan=False) + "\n"
+    return (
+        json.dumps(results_data(solved, digest, software), indent=1, ensure_ascii=False, allow_nan=False)
+        + "\n"
+    )
 
 
 def results_data(solved: Solved, digest: Digest, software: Software) -> Data:
@@ -27,9 +30,17 @@ def results_data(solved: Solved, digest: Digest, software: Software) -> Data:
     calculation = solved.chain.calculation
     base = solved.base
     return {
-        "calculation": {"number": calculation.number, "title": calculation.title, "revision": calculation.revision},
+        "calculation": {
+            "number": calculation.number,
+            "title": calculation.title,
+            "revision": calculation.revision,
+        },
         "digest": {"meaning": digest.meaning, "cards": digest.cards, "results": digest.results},
-        "software": {"calcbook": software.calcbook, "CoolProp": software.coolprop, "library": software.library},
+        "software": {
+            "calcbook": software.calcbook,
+            "CoolProp": software.coolprop,
+            "library": software.library,
+        },
         "results": _results(base),
         "conditions": {condition: [_term(row) for row in base.terms[condition]] for condition in CONDITIONS},
         "steps": _steps(solved),
@@ -55,7 +66,11 @@ def _figure(value: float, kind: QuantityKind) -> Data:
 
 def _results(case: CaseOutcome) -> Data:
     found: Data = {name: _figure(result.value, result.kind) for name, result in case.results.items()}
-    found["controlling"] = {"value": case.controlling or None, "share": rounded(case.controlling_share), "unit": "1"}
+    found["controlling"] = {
+        "value": case.controlling or None,
+        "share": rounded(case.controlling_share),
+        "unit": "1",
+    }
     return found
 
 
@@ -72,8 +87,13 @@ def _term(row: TermRow) -> Data:
         "T_outer": rounded(row.outer_temperature),
         "method": row.methods,
         "branches": [
-            {"name": branch.name, "kind": branch.kind, "coefficient": rounded(branch.coefficient),
-             "reference_temperature": rounded(branch.reference_temperature), "heat_flow": rounded(branch.heat_flow)}
+            {
+                "name": branch.name,
+                "kind": branch.kind,
+                "coefficient": rounded(branch.coefficient),
+                "reference_temperature": rounded(branch.reference_temperature),
+                "heat_flow": rounded(branch.heat_flow),
+            }
             for branch in row.branches
         ],
     }
@@ -87,15 +107,17 @@ def _steps(solved: Solved) -> list[Data]:
     terms += [("circuit", row) for row in solved.base.circuit]
     for term, row in terms:
         for condition in reversed(CONDITIONS):
-            found.append({
-                "id": row.step.id,
-                "symbol": row.step.symbol,
-                "relation": _relation(row, texts),
-                "value": rounded(row.service if condition == SERVICE else row.clean),
-                "unit": row.step.kind.unit if row.step.kind is not None else "1",
-                "condition": condition,
-                "term": term,
-            })
+            found.append(
+                {
+                    "id": row.step.id,
+                    "symbol": row.step.symbol,
+                    "relation": _relation(row, texts),
+                    "value": rounded(row.service if condition == SERVICE else row.clean),
+                    "unit": row.step.kind.unit if row.step.kind is not None else "1",
+                    "condition": condition,
+                    "term": term,
+                }
+            )
     return found
 
 
@@ -137,13 +159,25 @@ def _criterion(item: CriterionResult) -> Data:
 def _assumptions(solved: Solved) -> list[Data]:
     """The engineer's assumptions, then those that the runner made."""
     engineer: list[Data] = [
-        {"id": item.id, "text": item.text, "basis": item.basis, "verified": item.is_verified, "by": item.verified_by,
-         "used_in": []}
+        {
+            "id": item.id,
+            "text": item.text,
+            "basis": item.basis,
+            "verified": item.is_verified,
+            "by": item.verified_by,
+            "used_in": [],
+        }
         for item in solved.chain.calculation.assumptions
     ]
     runner: list[Data] = [
-        {"id": item.id, "text": item.text, "basis": item.decided_by, "verified": None, "by": "runner",
-         "used_in": [item.acts_on]}
+        {
+            "id": item.id,
+            "text": item.text,
+            "basis": item.decided_by,
+            "verified": None,
+            "by": "runner",
+            "used_in": [item.acts_on],
+        }
         for item in solved.base.assumptions
     ]
     return engineer + runner

@@ -6,23 +6,33 @@ A line with values re-evaluates to the printed value: the operands carry as many
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
+from typing import Any
 
-from calcbook.chain.circuit import branch_coefficient
 from calcbook.chain.fluids import LiquidOperation, PropertyOperation
 from calcbook.chain.outcome import CaseOutcome, StepRow
 from calcbook.chain.solve import Solution
 from calcbook.chain.types import CLEAN, CONDITIONS, SERVICE, Chain, ChainStep, Group, Layer
-from calcbook.formulas import Compare, Node, Relation, evaluate, number_text, parse_expression, write, write_with_values
+from calcbook.formulas import (
+    Compare,
+    Node,
+    Relation,
+    evaluate,
+    number_text,
+    parse_expression,
+    write,
+    write_with_values,
+)
 from calcbook.formulas.names import written_name
 from calcbook.library.operations import LookupOperation, RelationOperation, SolveOperation, SumOperation
 from calcbook.library.reading import vocabulary
 from calcbook.quantities import QuantityKind
 from calcbook.record.numbers import NOT_USED, PLAIN_DIGITS, celsius, number, plain, unit_text, value_text
 
-Values = Mapping[str, object]
+Values = Mapping[str, Any]
 PASCALS_OF_BAR = 1e5
+LISTED_DIGITS = 7
 
 
 @dataclass(frozen=True, slots=True)
@@ -57,6 +67,9 @@ class StepTexts:
         self.steps = {row.step.id: row.step for term in case.chains for row in term.rows}
         self.steps |= {row.step.id: row.step for row in case.circuit}
         self.closing = _closing_relations(chain)
+        self.streams = {
+            branch.name: branch.stream for group in (chain.inner, chain.outer) for branch in group.branches
+        }
 
     # -- rows ---------------------------------------------------------------------------------------
 
@@ -64,8 +77,10 @@ class StepTexts:
         """The texts of one row of the chain."""
         step = row.step
         kind = step.kind
-        values = {condition: self._values(step, condition, value)
-                  for condition, value in ((CLEAN, row.clean), (SERVICE, row.service))}
+        values = {
+            condition: self._values(step, condition, value)
+            for condition, value in ((CLEAN, row.clean), (SERVICE, row.service))
+        }
         return ChainLine(
             quantity=_quantity(step.title, step.symbol),
             relation=self.relation(step),
@@ -81,6 +96,8 @@ class StepTexts:
         """The row of a figure that the solution gives: a surface temperature or a heat flux."""
         closing = self.closing[name]
         kind = closing.kind
+        names = self._names(closing.inputs, closing.symbol)
+        notes = () if names else self._notes(closing.inputs, closing.symbol)
         texts, values = {}, {}
         for condition in CONDITIONS:
             solution = self.case.solutions[condition]
@@ -89,13 +106,13 @@ class StepTexts:
             values[condition] = write_with_values(closing.relation, arguments, texts[condition])
         return ChainLine(
             quantity=_quantity(closing.title, closing.symbol),
-            relation=write(closing.relation),
+            relation=write(closing.relation, names),
             values=values[SERVICE],
             clean=texts[CLEAN],
             service=texts[SERVICE],
             unit=unit_text(kind.unit),
-            basis="closed with the circuit" + self._celsius(kind, *(self.case.solutions[condition].number(name)
-                                                                    for condition in CONDITIONS)),
+            basis="; ".join(("closed with the circuit", *notes))
+            + _celsius_note(kind, *(self.case.solutions[condition].number(name) for condition in CONDITIONS)),
             clean_values=values[CLEAN],
         )
 
@@ -105,13 +122,15 @@ class StepTexts:
         """The relation of a step in the trade's signs, or the words for what is no relation."""
         operation = step.operation
         if isinstance(operation, RelationOperation):
-            return write(operation.relation, self._names(step))
+            return write(operation.relation, self._renamed(step))
         if isinstance(operation, LookupOperation):
             return f"table {operation.table.name}, column {operation.column}"
         if isinstance(operation, SolveOperation):
             low, high = operation.line.between
-            return (f"root {written_name(operation.line.symbol)} of {write(operation.line.equation)},"
-                    f" between {number(low)} and {number(high)}")
+            return (
+                f"root {written_name(operation.line.symbol)} of {write(operation.line.equation)},"
+                f" between {number(low)} and {number(high)}"
+            )
         if isinstance(operation, SumOperation):
             line = operation.line
             return f"sum of {write(line.of)} for {line.over} = 0 to {line.terms - 1}"
@@ -121,15 +140,17 @@ class StepTexts:
             return "phase of the fluid"
         raise TypeError(f"{type(operation).__name__} has no printed form")
 
-    def _names(self, step: ChainStep) -> dict[str, str]:
-        """Written names of symbols: a method keeps its own; elsewhere the symbol of the figure that stands there."""
-        if step.basis in self.methods:
-            return {}
-        names = {}
-        for local, bound in step.inputs.items():
-            symbol = self._symbol(bound)
-            names[local] = written_name(symbol) if symbol else written_name(local)
-        if len(set(names.values())) < len(names):
+    def _renamed(self, step: ChainStep) -> dict[str, str]:
+        """A method keeps the symbols of its source; elsewhere the figures' own symbols are written."""
+        return {} if step.basis in self.methods else self._names(step.inputs, step.symbol)
+
+    def _names(self, inputs: Mapping[str, str], own: str) -> dict[str, str]:
+        """Written names of symbols outside methods: the symbol of the figure that stands there.
+
+        None is replaced where two figures of one row, or a figure and the row itself, would share a symbol.
+        """
+        names = {local: written_name(self._symbol(bound) or local) for local, bound in inputs.items()}
+        if len({*names.values(), written_name(own)}) < len(names) + (own not in inputs):
             return {}
         return {local: name for local, name in names.items() if "." not in local}
 
@@ -150,23 +171,26 @@ class StepTexts:
         operation = step.operation
         if isinstance(operation, RelationOperation):
             flag = isinstance(value, bool)
-            return write_with_values(operation.relation, arguments, None if flag else value_text(value, step.kind))
+            return write_with_values(
+                operation.relation, arguments, None if flag else value_text(value, step.kind)
+            )
         if isinstance(operation, LookupOperation):
-            found = ", ".join(f"{written_name(symbol)} = {number(plain(arguments[symbol]))}"  # type: ignore[arg-type]
-                              for symbol in operation.symbols)
-            return f"table {operation.table.name}: row for {found}"
+            return f"table {operation.table.name}: row for {_listed(operation.symbols, arguments)}"
         if isinstance(operation, SolveOperation):
             return _both_sides(operation, arguments, plain(value))
         if isinstance(operation, SumOperation):
-            found = ", ".join(f"{written_name(symbol)} = {number(plain(arguments[symbol]), 10)}"  # type: ignore[arg-type]
-                              for symbol in operation.symbols)
-            return f"{operation.line.terms} terms with {found}"
+            return f"{operation.line.terms} terms with {_listed(operation.symbols, arguments)}"
         if isinstance(operation, PropertyOperation | LiquidOperation):
             return self._state(step, operation, solution, condition)
         raise TypeError(f"{type(operation).__name__} has no printed form")
 
-    def _state(self, step: ChainStep, operation: PropertyOperation | LiquidOperation, solution: Solution,
-               condition: str) -> str:
+    def _state(
+        self,
+        step: ChainStep,
+        operation: PropertyOperation | LiquidOperation,
+        solution: Solution,
+        condition: str,
+    ) -> str:
         """Fluid, temperature, pressure, fraction and phase at which a property is taken."""
         asked = operation.operation if isinstance(operation, LiquidOperation) else operation
         temperature = solution.number(step.inputs["T"])
@@ -182,8 +206,10 @@ class StepTexts:
     def _phase(self, step: ChainStep, temperature: float, condition: str) -> str:
         """The phase that the properties table states for this step's state."""
         for row in self.case.properties:
-            owner = f"stream {row.stream}/"
-            fits = step.id.startswith(owner) if row.place == "bulk" else f"/{row.place}/" in step.id
+            if row.place == "bulk":
+                fits = step.id.startswith(f"stream {row.stream}/")
+            else:
+                fits = f"/{row.place}/" in step.id and self.streams.get(step.owner) == row.stream
             if fits and row.condition in ("", condition) and row.temperature == temperature:
                 return row.phase
         return ""
@@ -191,26 +217,75 @@ class StepTexts:
     # -- basis --------------------------------------------------------------------------------------
 
     def _basis(self, step: ChainStep, row: StepRow) -> str:
-        basis = step.basis
-        if step.basis in self.methods:
-            others = [f"{written_name(local)} is {written_name(symbol)}" for local, bound in step.inputs.items()
-                      if (symbol := self._symbol(bound)) and symbol != local and "." not in local]
-            basis = "; ".join([step.basis, *others])
-        return basis + self._celsius(step.kind, row.clean, row.service)
+        """What a row rests on, which figures stand for its symbols, and its Celsius temperature."""
+        operation = step.operation
+        parts = [step.basis]
+        if isinstance(operation, PropertyOperation | LiquidOperation):
+            asked = operation.operation if isinstance(operation, LiquidOperation) else operation
+            parts = [
+                next(
+                    (
+                        f"properties of {name}"
+                        for name, state in self.chain.streams.items()
+                        if state.fluid is asked.source
+                    ),
+                    step.basis,
+                )
+            ]
+        elif step.basis in self.methods:
+            parts += self._notes(step.inputs, step.symbol, step.basis)
+        else:
+            parts += (
+                self._notes(step.inputs, step.symbol)
+                if not self._renamed(step)
+                else self._literals(step.inputs)
+            )
+        return "; ".join(parts) + _celsius_note(step.kind, row.clean, row.service)
 
-    def _celsius(self, kind: QuantityKind | None, clean: float | bool, service: float | bool) -> str:
-        """A temperature on the Celsius scale beside its row in kelvin."""
-        if kind is None or kind.scale != "point":
-            return ""
-        texts = [celsius(plain(value)) for value in (clean, service)]
-        if texts[0] == texts[1]:
-            return f"; {texts[0]} °C"
-        return f"; clean {texts[0]} °C, service {texts[1]} °C"
+    def _literals(self, inputs: Mapping[str, str]) -> list[str]:
+        """Which figures stated in place stand in a row."""
+        found = ((local, self.chain.inputs.get(bound)) for local, bound in inputs.items())
+        return [
+            f"{written_name(local)} is the {item.title}"
+            for local, item in found
+            if item and not item.is_given
+        ]
+
+    def _notes(self, inputs: Mapping[str, str], own: str, method: str = "") -> list[str]:
+        """Which figures stand for symbols that do not say it; ``method`` is the card of the row."""
+        notes = []
+        for local, bound in inputs.items():
+            symbol = self._symbol(bound)
+            if symbol and "." not in local:
+                origin = self.steps[bound].basis if bound in self.steps else ""
+                words = f" of {origin}" if origin in self.methods and origin != method else ""
+                if words or symbol != local:
+                    given = "the given " if bound in self.chain.inputs and symbol in (own, *inputs) else ""
+                    notes.append(f"{written_name(local)} is {given}{written_name(symbol)}{words}")
+        return notes + self._literals(inputs)
+
+
+def _celsius_note(kind: QuantityKind | None, clean: float | bool, service: float | bool) -> str:
+    """A temperature on the Celsius scale beside its row in kelvin."""
+    if kind is None or kind.scale != "point":
+        return ""
+    texts = [celsius(plain(value)) for value in (clean, service)]
+    if texts[0] == texts[1]:
+        return f"; {texts[0]} °C"
+    return f"; clean {texts[0]} °C, service {texts[1]} °C"
 
 
 def _quantity(title: str, symbol: str) -> str:
     written = written_name(symbol)
-    return written if title in ("", symbol) else f"{title} {written}"
+    if title in ("", symbol):
+        return written
+    return title if symbol in title.split() else f"{title} {written}"
+
+
+def _listed(symbols: Iterable[str], arguments: Values) -> str:
+    return ", ".join(
+        f"{written_name(symbol)} = {number(plain(arguments[symbol]), LISTED_DIGITS)}" for symbol in symbols
+    )
 
 
 def _both_sides(operation: SolveOperation, arguments: Values, root: float) -> str:
@@ -223,7 +298,9 @@ def _both_sides(operation: SolveOperation, arguments: Values, root: float) -> st
 
 def _side(side: Node, known: Values) -> str:
     value = float(evaluate(side, known))
-    return write_with_values(side, {name: known[name] for name in side.symbols}, number_text(value, PLAIN_DIGITS))
+    return write_with_values(
+        side, {name: known[name] for name in side.symbols}, number_text(value, PLAIN_DIGITS)
+    )
 
 
 # --- figures that the solution closes ----------------------------------------------------------------
@@ -241,7 +318,7 @@ class _Closing:
 
 
 def _closing_relations(chain: Chain) -> dict[str, _Closing]:
-    """Surface temperatures, wall temperatures and fluxes by id, with what each follows from in the circuit."""
+    """Surface temperatures, wall temperatures and fluxes by id, with what each follows from."""
     if not chain.has_temperatures:
         return {}
     kinds = vocabulary()
@@ -251,34 +328,43 @@ def _closing_relations(chain: Chain) -> dict[str, _Closing]:
 
     def drop_before(count: int) -> tuple[str, dict[str, str]]:
         """The inner bulk temperature less the drops of the first elements."""
-        names = [(f"R_{numbers[element.name]}", chain.results[f"R {element.name}"]) for element in chain.elements[:count]]
+        names = [
+            (f"R_{numbers[element.name]}", chain.results[f"R {element.name}"])
+            for element in chain.elements[:count]
+        ]
         summed = " + ".join(symbol for symbol, _ in names)
         text = "T_in" if not names else f"T_in - q*({summed})" if len(names) > 1 else f"T_in - q*{summed}"
         return text, {"T_in": chain.inner.bulk, **flux, **dict(names)}
 
     for place, element in enumerate(chain.elements):
         if isinstance(element, Layer) and element.first_temperature:
-            for name, mark, words in ((element.first_temperature, "T_1", "inner"), (element.second_temperature, "T_2", "outer")):
+            for name, mark, words in (
+                (element.first_temperature, "T_1", "inner"),
+                (element.second_temperature, "T_2", "outer"),
+            ):
                 text, inputs = drop_before(place + (mark == "T_2"))
-                found[name] = _closed(mark, f"temperature at the {words} side", kinds["temperature"], text, inputs)
+                found[name] = _closed(
+                    mark, f"temperature at the {words} side", kinds["temperature"], text, inputs
+                )
         if isinstance(element, Group):
             mark = f"R_{numbers[element.name]}"
             inputs = {**flux, mark: chain.results[f"R {element.name}"]}
             text = f"T_in - q*{mark}" if element.side == "inside" else f"T_out + q*{mark}"
             inputs["T_in" if element.side == "inside" else "T_out"] = element.bulk
-            found[element.surface_temperature] = _closed("T_s", "surface temperature", kinds["temperature"], text, inputs)
+            found[element.surface_temperature] = _closed(
+                "T_s", "surface temperature", kinds["temperature"], text, inputs
+            )
             area = chain.surfaces[element.surface].area
-            found[element.flux] = _closed("q", "heat flux at the surface", kinds["heat flux"], "abs(Q)/A",
-                                          {"Q": chain.results["heat flow"], "A": area})
+            found[element.flux] = _closed(
+                "q",
+                "heat flux at the surface",
+                kinds["heat flux"],
+                "abs(Q)/A",
+                {"Q": chain.results["heat flow"], "A": area},
+            )
     return found
 
 
 def _closed(symbol: str, title: str, kind: QuantityKind, text: str, inputs: dict[str, str]) -> _Closing:
     relation = parse_expression(text)
     return _Closing(symbol, title, kind, relation, {name: inputs[name] for name in relation.symbols})
-
-
-def held_coefficients(chain: Chain) -> frozenset[str]:
-    """Ids under which film coefficients stand in the circuit, whichever method gave them."""
-    return frozenset(branch_coefficient(group, branch.name) for group in (chain.inner, chain.outer)
-                     for branch in group.branches)

@@ -17,8 +17,10 @@ def circuit(page: Page) -> list[Block]:
     """The drawing, and one table per condition."""
     blocks: list[Block] = [
         Heading(2, "7. Circuit"),
-        Paragraph(f"From the inside to the outside. Resistances are area resistances; the basis area is the surface"
-                  f" {page.basis}."),
+        Paragraph(
+            f"From the inside to the outside. Resistances are area resistances; the basis area is the surface"
+            f" {page.basis}."
+        ),
         Code("\n".join(_drawing(page))),
     ]
     for condition in reversed(CONDITIONS):
@@ -38,7 +40,9 @@ def _drawing(page: Page) -> list[str]:
         if index < len(service):
             between = f"between {row.name} and {service[index].name}"
             lines.append(f"o {between}{_both(other.outer_temperature, row.outer_temperature)}")
-    lines.append(f"o {_fluid(page, outer)}{_both(clean[-1].outer_temperature, service[-1].outer_temperature)}")
+    lines.append(
+        f"o {_fluid(page, outer)}{_both(clean[-1].outer_temperature, service[-1].outer_temperature)}"
+    )
     return lines
 
 
@@ -57,7 +61,10 @@ def _both(clean: float, service: float) -> str:
 def _element(index: int, row: TermRow) -> list[str]:
     if row.branches:
         first = f"| R_{index} {row.name}: side by side, acts on {row.surface}"
-        return [first, *(f"|   h_{place} {branch.name}: {branch.kind}" for place, branch in enumerate(row.branches, 1))]
+        return [
+            first,
+            *(f"|   h_{place} {branch.name}: {branch.kind}" for place, branch in enumerate(row.branches, 1)),
+        ]
     method = f", {row.methods}" if row.methods and row.methods != row.kind else ""
     only = " (service only)" if row.kind == "fouling" else ""
     return [f"| R_{index} {row.name}: {row.kind}{method}, acts on {row.surface}{only}"]
@@ -67,8 +74,17 @@ def _element(index: int, row: TermRow) -> list[str]:
 
 
 def _table(page: Page, condition: str) -> Table:
-    columns = ("Term", "Kind", "Acts on", "R on that area, m²·K/W", f"R on {page.basis}, m²·K/W", "Share", "Share drawn",
-               "T inner side, °C", "T outer side, °C")
+    columns = (
+        "Term",
+        "Kind",
+        "Acts on",
+        "R on that area, m²·K/W",
+        f"R on {page.basis}, m²·K/W",
+        "Share",
+        "Share drawn",
+        "T inner side, °C",
+        "T outer side, °C",
+    )
     rows = [_row(index, row) for index, row in enumerate(page.base.terms[condition], 1)]
     total = page.base.solutions[condition].number(page.chain.results["R total"])
     rows.append(("R_tot total", "", "", "", number(total, PLAIN_DIGITS), percent(1.0), bar(1.0), "", ""))
@@ -76,8 +92,17 @@ def _table(page: Page, condition: str) -> Table:
 
 
 def _row(index: int, row: TermRow) -> tuple[str, ...]:
-    return (f"R_{index} {row.name}", row.kind, row.surface, number(row.own_resistance), number(row.resistance),
-            percent(row.share), bar(row.share), celsius(row.inner_temperature), celsius(row.outer_temperature))
+    return (
+        f"R_{index} {row.name}",
+        row.kind,
+        row.surface,
+        number(row.own_resistance),
+        number(row.resistance),
+        percent(row.share),
+        bar(row.share),
+        celsius(row.inner_temperature),
+        celsius(row.outer_temperature),
+    )
 
 
 def bar(share: float) -> str:
@@ -92,14 +117,24 @@ def _branches(page: Page, condition: str) -> list[Block]:
         if not row.branches:
             continue
         columns = (f"Side by side in {row.name}", "Kind", "h, W/(m²·K)", "Refers to, °C", "Heat flow, W")
-        blocks.append(Table(columns, tuple(_branch(branch) for branch in row.branches), (
-            "h belongs to the difference between the surface and the temperature it refers to;"
-            " a heat flow is positive from the inside to the outside.",)))
+        blocks.append(
+            Table(
+                columns,
+                tuple(_branch(branch) for branch in row.branches),
+                (
+                    "h belongs to the difference between the surface and the temperature it refers to;"
+                    " a heat flow is positive from the inside to the outside.",
+                ),
+            )
+        )
     return blocks
 
 
 def _branch(branch: BranchRow) -> tuple[str, ...]:
-    return (branch.name, branch.kind, number(branch.coefficient), celsius(branch.reference_temperature),
-            number(branch.heat_flow))
-
-
+    return (
+        branch.name,
+        branch.kind,
+        number(branch.coefficient),
+        celsius(branch.reference_temperature),
+        number(branch.heat_flow),
+    )

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from calcbook.formulas.names import written_name
 from calcbook.record.blocks import Block, Heading, Paragraph, Table
-from calcbook.record.page import Page, source_text
+from calcbook.record.page import Page, reference_id
 
 
 def references(page: Page) -> list[Block]:
@@ -13,14 +13,22 @@ def references(page: Page) -> list[Block]:
 
 
 def _publications(page: Page) -> list[Block]:
-    used: dict[str, list[str]] = {}
-    for card in page.cards():
-        for source in card.sources:
-            used.setdefault(source_text(source), []).append(card.id)
-    if not used:
+    """One row per publication of each card, numbered within the card, so that no number moves."""
+    rows = tuple(
+        (reference_id(card.id, place), source.cite, source.supports or "the card", source.standing)
+        for card in page.cards()
+        for place, source in enumerate(card.sources, 1)
+    )
+    if not rows:
         return [Paragraph("No card with a publication is used.")]
-    rows = tuple((str(place), text, ", ".join(dict.fromkeys(cards))) for place, (text, cards) in enumerate(used.items(), 1))
-    return [Heading(3, "Publications"), Table(("No", "Publication, what it supports, standing", "Card"), rows)]
+    words = (
+        "A publication is cited by its card and its number there; methods of the cross-check are not listed."
+    )
+    return [
+        Heading(3, "Publications"),
+        Paragraph(words),
+        Table(("Reference", "Publication", "What it supports", "Standing"), rows),
+    ]
 
 
 def _documents(page: Page) -> list[Block]:
@@ -46,10 +54,16 @@ def _documents(page: Page) -> list[Block]:
 def sign_off(page: Page) -> list[Block]:
     """One row per role; nothing is signed in a record."""
     rows = tuple((role, "not signed", "", "", "") for role in page.calculation.settings.roles)
-    words = ("A sign-off stands in a file beside the calculation and names the digest of section 1; any change of meaning,"
-             " cards or displayed results voids it. The program shows that names differ and that content is unchanged; it"
-             " shows neither identity nor competence.")
-    return [Heading(2, "16. Sign-off"), Paragraph(words), Table(("Role", "State", "Name", "Date", "Digest"), rows)]
+    words = (
+        "A sign-off stands in a file beside the calculation and names the digest of section 1; any change"
+        " of meaning, cards or displayed results voids it. The program shows that names differ and that"
+        " content is unchanged; it shows neither identity nor competence."
+    )
+    return [
+        Heading(2, "16. Sign-off"),
+        Paragraph(words),
+        Table(("Role", "State", "Name", "Date", "Digest"), rows),
+    ]
 
 
 def revision_history(page: Page) -> list[Block]:
@@ -64,5 +78,7 @@ def revision_history(page: Page) -> list[Block]:
 def closing_line(page: Page) -> list[Block]:
     """The line by which a reader sees that the record is whole."""
     calculation = page.calculation
-    return [Heading(2, "18. End"),
-            Paragraph(f"End of calculation {calculation.number}, revision {calculation.revision}.")]
+    return [
+        Heading(2, "18. End"),
+        Paragraph(f"End of calculation {calculation.number}, revision {calculation.revision}."),
+    ]

@@ -87,13 +87,15 @@ def _brief_rows(page: Page) -> list[tuple[str, str, str]]:
         rows.append(("Cleanliness", number(cleanliness.value, CONCLUSION_DIGITS), "U_service/U_clean"))
     if excess is not None:
         rows.append(("Excess surface for fouling", percent(excess.value), "U_clean/U_service − 1"))
-    for name, title in (("heat_flow_service", "Heat flow in service, inside to outside"),
-                        ("heat_flow_clean", "Heat flow clean, inside to outside")):
+    for name, title in (
+        ("heat_flow_service", "Heat flow in service, inside to outside"),
+        ("heat_flow_clean", "Heat flow clean, inside to outside"),
+    ):
         result = page.result(name)
         if result is not None:
             suffix = " (for 1 m of length)" if page.chain.per_metre else ""
-            rows.append((title + suffix, in_report_unit(result.value, result.kind, page.calculation.report,
-                                                        CONCLUSION_DIGITS), "U·A times the difference of the bulk temperatures"))
+            value = in_report_unit(result.value, result.kind, page.calculation.report, PLAIN_DIGITS)
+            rows.append((title + suffix, value, "U·A times the difference of the bulk temperatures"))
     rows.append(("Controlling term in service", *_controlling(page.base)))
     return rows
 
@@ -120,8 +122,16 @@ def criterion_row(item: CriterionResult, page: Page) -> tuple[str, ...]:
     value, limit = apart(item.value, item.limit, unit, point, PLAIN_DIGITS)
     verdict = "criterion met" if item.met else "criterion not met"
     shown = unit_text(unit)
-    return (item.id, case_name(item.case), item.that, with_unit(value, shown), with_unit(limit, shown),
-            _margin(item, page), verdict, item.source or "no source")
+    return (
+        item.id,
+        case_name(item.case),
+        item.that,
+        with_unit(value, shown),
+        with_unit(limit, shown),
+        _margin(item, page),
+        verdict,
+        item.source or "no source",
+    )
 
 
 def _margin(item: CriterionResult, page: Page) -> str:
@@ -129,7 +139,7 @@ def _margin(item: CriterionResult, page: Page) -> str:
     if item.kind.scale == "point":
         return with_unit(number(item.margin, CONCLUSION_DIGITS), unit_text(item.kind.unit))
     margin = in_report_unit(item.margin, item.kind, page.calculation.report, CONCLUSION_DIGITS)
-    relative = f" ({percent(item.margin / abs(item.limit))} of the limit)" if item.limit else ""
+    relative = f"; {percent(item.margin / abs(item.limit))} of the limit" if item.limit else ""
     return margin + relative
 
 
@@ -155,7 +165,7 @@ def open_items(page: Page) -> list[Block]:
     words = counted(len(items), "open item", "open items")
     return [
         heading,
-        Paragraph(f"{words}. The calculation is preliminary until each is closed or accepted in the file."),
+        Paragraph(f"{words}. While any is open the calculation is preliminary."),
         Table(("Kind", "Id", "Open item"), rows),
     ]
 
@@ -167,7 +177,9 @@ def changes(page: Page) -> list[Block]:
     """What moved since the last issued revision."""
     return [
         Heading(2, "3. Changes since the last issued revision"),
-        Paragraph("No revision of this calculation is issued yet. The reasons of each revision are in section 17."),
+        Paragraph(
+            "No revision of this calculation is issued yet. The reasons of each revision are in section 17."
+        ),
     ]
 
 

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from calcbook.calcfile.calculation import Assumption, Given
 from calcbook.chain.outcome import PropertyRow
-from calcbook.chain.types import Input
+from calcbook.chain.types import SERVICE, Input
 from calcbook.formulas.names import written_name
 from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Table
 from calcbook.record.numbers import AS_GIVEN_DIGITS, NOT_USED, celsius, number, unit_text, with_unit
@@ -29,8 +29,12 @@ def givens(page: Page) -> list[Block]:
     literals = [item for item in page.chain.inputs.values() if not item.is_given]
     if literals:
         blocks.append(Heading(3, "Figures stated where they are used"))
-        blocks.append(Table(("Figure", "Value as written", "Value in SI", "Source"),
-                            tuple(_literal_row(item) for item in literals)))
+        blocks.append(
+            Table(
+                ("Figure", "Value as written", "Value in SI", "Source"),
+                tuple(_literal_row(item) for item in literals),
+            )
+        )
     return blocks
 
 
@@ -39,8 +43,15 @@ def _given_row(given: Given, page: Page) -> tuple[str, ...]:
     symbol = written_name(given.symbol)
     shown = symbol if symbol == given.symbol else f"{symbol} (in the file {given.symbol})"
     used = page.chain.used_in.get(given.symbol, ())
-    return (shown, given.meaning or "no meaning stated", given.value.text, si_text(item), _tolerance(given),
-            given.source or "no source", "; ".join(used) or "nothing uses it")
+    return (
+        shown,
+        given.meaning or "no meaning stated",
+        given.value.text,
+        si_text(item),
+        _tolerance(given),
+        given.source or "no source",
+        "; ".join(used) or "nothing uses it",
+    )
 
 
 def _literal_row(item: Input) -> tuple[str, ...]:
@@ -82,7 +93,9 @@ def assumptions(page: Page) -> list[Block]:
 
 
 def _engineer(page: Page) -> list[Block]:
-    rows = tuple((item.id, item.text, item.basis, verification(item)) for item in page.calculation.assumptions)
+    rows = tuple(
+        (item.id, item.text, item.basis, verification(item)) for item in page.calculation.assumptions
+    )
     if not rows:
         return [Paragraph("The engineer states no assumption.")]
     return [Table(("Id", "Assumption", "Basis", "Verification"), rows)]
@@ -103,7 +116,9 @@ def _runner(page: Page) -> list[Block]:
 
 
 def _cards(page: Page) -> list[Block]:
-    items = tuple(f"{card.id}: {sentence}" for card in page.cards() for sentence in getattr(card, "assumes", ()))
+    items = tuple(
+        f"{card.id}: {sentence}" for card in page.cards() for sentence in getattr(card, "assumes", ())
+    )
     return [Bullets(items)] if items else [Paragraph("The cards used state no assumption.")]
 
 
@@ -111,17 +126,63 @@ def _cards(page: Page) -> list[Block]:
 
 
 def _properties(page: Page) -> list[Block]:
-    rows = page.base.properties
+    rows = (*page.base.properties, *_flow_states(page))
     if not rows:
         return [Paragraph("No property of a fluid is used.")]
     asked = [column for column in PROPERTY_COLUMNS if any(column[0] in row.values for row in rows)]
-    columns = ("Stream", "Place", "Condition", "T, °C", "T, K", "p, bar", "Phase", *(title for _, title, _ in asked),
-               "Provider")
+    columns = (
+        "Stream",
+        "Place",
+        "Condition",
+        "T, °C",
+        "T, K",
+        "p, bar",
+        "Phase",
+        *(title for _, title, _ in asked),
+        "Provider",
+    )
     return [Table(columns, tuple(_property_row(row, asked) for row in rows))]
+
+
+def _flow_states(page: Page) -> list[PropertyRow]:
+    """The states at which volume flows are measured, with the density taken there."""
+    solution = page.base.solutions[SERVICE]
+    found = []
+    for state in page.chain.streams.values():
+        step = next(
+            (step for step in page.chain.steps if step.id == f"stream {state.name}/density of flow"), None
+        )
+        if step is None or step.inputs["T"] == state.temperature:
+            continue
+        temperature, pressure = (solution.number(step.inputs[name]) for name in ("T", "p"))
+        found.append(
+            PropertyRow(
+                state.name,
+                "flow as stated",
+                "",
+                temperature,
+                pressure,
+                state.phase or "not stated",
+                {"density": solution.number(step.id)},
+                state.fluid_name,
+            )
+        )
+    return found
 
 
 def _property_row(row: PropertyRow, asked: list[tuple[str, str, int]]) -> tuple[str, ...]:
     pressure = number(row.pressure / PASCALS_OF_BAR) if row.pressure == row.pressure else "saturated"
-    values = (number(row.values[name], digits) if name in row.values else NOT_USED for name, _, digits in asked)
-    return (row.stream, row.place, row.condition or "clean and service", celsius(row.temperature),
-            number(row.temperature), pressure, row.phase, *values, row.provider)
+    values = (
+        number(row.values[name], digits) if name in row.values else NOT_USED for name, _, digits in asked
+    )
+    return (
+        row.stream,
+        row.place,
+        row.condition or "clean and service",
+        celsius(row.temperature),
+        number(row.temperature),
+        pressure,
+        row.phase,
+        *values,
+        row.provider,
+    )

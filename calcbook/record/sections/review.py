@@ -23,16 +23,24 @@ def _identity(page: Page) -> str:
     calculation = page.calculation
     listed = any(item.revision == calculation.revision for item in calculation.revisions)
     words = "stands in" if listed else "does not stand in"
-    return (f"{calculation.number}, revision {calculation.revision}, {calculation.date}; the revision {words} the"
-            " revision history.")
+    return (
+        f"{calculation.number}, revision {calculation.revision}, {calculation.date}; the revision {words} the"
+        " revision history."
+    )
 
 
 def _sources(page: Page) -> str:
     missing = [item for item in page.solved.open_items if item.kind == "source"]
     count = len(page.chain.inputs)
     if not missing:
-        return f"All {counted(count, 'figure has', 'figures have')} a source." if count != 1 else "The figure has a source."
-    return f"{counted(len(missing), 'figure lacks', 'figures lack')} a source, of {count}; each is an open item."
+        return (
+            f"All {counted(count, 'figure has', 'figures have')} a source."
+            if count != 1
+            else "The figure has a source."
+        )
+    return (
+        f"{counted(len(missing), 'figure lacks', 'figures lack')} a source, of {count}; each is an open item."
+    )
 
 
 def _dimensions(page: Page) -> str:
@@ -42,8 +50,11 @@ def _dimensions(page: Page) -> str:
 
 def _temperatures(page: Page) -> str:
     taken = [item for item in page.base.assumptions if "absolute" in item.id or "site pressure" in item.id]
-    words = f" {counted(len(taken), 'pressure reading was', 'pressure readings were')} decided by the runner." if taken else \
-        " No pressure reading was left to the runner."
+    words = (
+        f" {counted(len(taken), 'pressure reading was', 'pressure readings were')} decided by the runner."
+        if taken
+        else " No pressure reading was left to the runner."
+    )
     return "Temperatures and temperature differences are two quantities and are never mixed." + words
 
 
@@ -54,16 +65,20 @@ def _unverified(page: Page) -> str:
         return "The engineer states no assumption."
     if not open_ones:
         return f"All {counted(len(items), 'assumption is', 'assumptions are')} verified."
-    return f"{len(open_ones)} of {counted(len(items), 'assumption is', 'assumptions are')} not verified: {', '.join(open_ones)}."
+    return f"Of {counted(len(items), 'assumption', 'assumptions')}, not verified: {', '.join(open_ones)}."
 
 
 def _ranges(page: Page) -> str:
-    checks = [check for check in page.every_check() if check.level == "range" and check.state != "not counting"]
+    checks = [
+        check for check in page.every_check() if check.level == "range" and check.state != "not counting"
+    ]
     outside = [check for check in checks if check.state == "outside"]
     accepted = [check for check in checks if check.state == "accepted"]
     unknown = [check for check in checks if check.state == "not evaluable"]
-    return (f"{len(checks)} range limits over every case and condition: {len(outside)} outside, {len(accepted)} accepted,"
-            f" {len(unknown)} not evaluable, the others within.")
+    return (
+        f"{len(checks)} range limits over every case and condition: {len(outside)} outside, {len(accepted)}"
+        f" accepted, {len(unknown)} not evaluable, the others within."
+    )
 
 
 def _wall_phase(page: Page) -> str:
@@ -73,7 +88,8 @@ def _wall_phase(page: Page) -> str:
         return "No film has a fluid whose phase at the wall could be checked."
     if not failed:
         return f"{len(checks)} checks against boiling, condensing and freezing at the wall, all within."
-    return f"{len(failed)} of {len(checks)} checks at the wall are not within: {failed[0].figure}, limit {failed[0].limit}."
+    first = f"{failed[0].figure}, limit {failed[0].limit}"
+    return f"{len(failed)} of {len(checks)} checks at the wall are not within: {first}."
 
 
 def _basis(page: Page) -> str:
@@ -95,8 +111,10 @@ def _other_methods(page: Page) -> str:
         return "No other method applies here."
     independent = [row for row in rows if not row.same_family]
     low, high = (pick(row.difference for row in rows) for pick in (min, max))
-    return (f"{counted(len(rows), 'other method', 'other methods')} within range, {len(independent)} of another family:"
-            f" U in service differs by {percent(low)} to {percent(high)}.")
+    return (
+        f"{counted(len(rows), 'other method', 'other methods')} within range, {len(independent)} of another"
+        f" family: U in service differs by {percent(low)} to {percent(high)}."
+    )
 
 
 def _largest_effect(page: Page) -> str:
@@ -119,12 +137,18 @@ def _criteria(page: Page) -> str:
     if not items:
         return "No criterion is stated: the result is for information."
     failed = [item for item in items if not item.met]
-    words = f"; not met: {', '.join(f'{item.id} in case {case_name(item.case)}' for item in failed)}" if failed else ""
+    words = (
+        f"; not met: {', '.join(f'{item.id} in case {case_name(item.case)}' for item in failed)}"
+        if failed
+        else ""
+    )
     return f"{len(items) - len(failed)} of {counted(len(items), 'criterion', 'criteria')} met{words}."
 
 
 def _cards(page: Page) -> str:
-    trial = [card.id for card in page.cards() if getattr(getattr(card, "state", None), "status", "") == "trial"]
+    trial = [
+        card.id for card in page.cards() if getattr(getattr(card, "state", None), "status", "") == "trial"
+    ]
     house = [card.id for card in page.cards() if getattr(card, "house", False)]
     words = f"{counted(len(page.cards()), 'card', 'cards')} used"
     words += f"; on trial: {', '.join(trial)}" if trial else "; none on trial"
@@ -145,7 +169,10 @@ QUESTIONS: tuple[tuple[str, Answer | None], ...] = (
     ("Is every source that is cited in its current edition?", None),
     ("Is every given used?", _unused),
     ("Do the dimensions agree in every relation?", _dimensions),
-    ("Are temperature differences and gauge pressures told apart from points and absolute pressures?", _temperatures),
+    (
+        "Are temperature differences and gauge pressures told apart from points and absolute pressures?",
+        _temperatures,
+    ),
     ("Which assumptions are not verified?", _unverified),
     ("Is each assumption reasonable, and on the safe side in the direction that matters here?", None),
     ("Does each situation and method fit the real geometry, fluid and boundary condition?", None),
@@ -169,31 +196,36 @@ QUESTIONS: tuple[tuple[str, Answer | None], ...] = (
 
 def review(page: Page) -> list[Block]:
     """Questions with the answers of the figures; those for a person stay open."""
-    rows = tuple((str(place), question, answer(page) if answer is not None else FOR_CHECKER)
-                 for place, (question, answer) in enumerate(QUESTIONS, 1))
+    rows = tuple(
+        (str(place), question, answer(page) if answer is not None else FOR_CHECKER)
+        for place, (question, answer) in enumerate(QUESTIONS, 1)
+    )
     people = sum(answer is None for _, answer in QUESTIONS)
-    words = (f"{len(QUESTIONS) - people} questions are answered by the figures of this record; {people} are for the checker,"
-             " who answers each in words that cite a step, a given or a figure.")
+    words = (
+        f"{len(QUESTIONS) - people} questions are answered by the figures of this record; {people} are for"
+        " the checker, who answers each in words that cite a step, a given or a figure."
+    )
     return [Heading(2, "13. Review"), Paragraph(words), Table(("No", "Question", "Answer"), rows)]
 
 
 # --- cautions ---------------------------------------------------------------------------------------
 
 FIXED = (
-    "This record is a heat-transfer calculation and nothing else. It does not show that equipment may be built,"
-    " operated, opened or put under pressure.",
-    "It covers no wall thickness, nozzle load, piping or relief device, and is no evidence that a code, directive or"
-    " licence is met.",
-    "Heat from the other side can put an isolated side under pressure: a relief path must stay open. What a burst tube"
-    " would do is a study of its own.",
+    "This record is a heat-transfer calculation and nothing else. It does not show that equipment may be"
+    " built, operated, opened or put under pressure.",
+    "It covers no wall thickness, nozzle load, piping or relief device, and is no evidence that a code,"
+    " directive or licence is met.",
+    "Heat from the other side can put an isolated side under pressure: a relief path must stay open. What a"
+    " burst tube would do is a study of its own.",
     "Corrosion, fatigue, vibration and attack by hydrogen do not show in U.",
-    "A fouling allowance is a choice of design, not a forecast. The clean unit transfers more heat: look at overcooling,"
-    " overheating, boiling and freezing with clean surfaces as well.",
+    "A fouling allowance is a choice of design, not a forecast. The clean unit transfers more heat: look at"
+    " overcooling, overheating, boiling and freezing with clean surfaces as well.",
     "A guarantee of performance needs a test under an agreed code.",
-    "Results hold for the figures, methods and ranges stated here. A competent engineer, licensed where the law asks for"
-    " it, must judge them and answers for their use.",
+    "Results hold for the figures, methods and ranges stated here. A competent engineer, licensed where the"
+    " law asks for it, must judge them and answers for their use.",
     "The program compares names and digests. It knows neither who a person is nor what that person can do.",
-    "Whoever acts on this record at the equipment first sees to isolation, entry permits and cleaning chemicals.",
+    "Whoever acts on this record at the equipment first sees to isolation, entry permits and cleaning"
+    " chemicals.",
     "A copy may be out of date: look up the current revision in the register.",
 )
 
@@ -210,15 +242,24 @@ def cautions(page: Page) -> list[Block]:
 
 
 def _triggered(page: Page) -> list[str]:
-    return [*_preliminary(page), *_hot_surface(page), *_wall(page), *_excess(page), *_trial(page), *_criterion(page)]
+    return [
+        *_preliminary(page),
+        *_hot_surface(page),
+        *_wall(page),
+        *_excess(page),
+        *_trial(page),
+        *_criterion(page),
+    ]
 
 
 def _preliminary(page: Page) -> list[str]:
     items = len(page.solved.open_items)
     if not items:
         return []
-    return [f"This calculation is {confirmation(page)}, with {counted(items, 'open item', 'open items')}: not for purchase,"
-            " fabrication or decisions on safety."]
+    return [
+        f"This calculation is {confirmation(page)}, with {counted(items, 'open item', 'open items')}: not"
+        " for purchase, fabrication or decisions on safety."
+    ]
 
 
 def _hot_surface(page: Page) -> list[str]:
@@ -231,15 +272,21 @@ def _hot_surface(page: Page) -> list[str]:
         for condition in reversed(CONDITIONS):
             temperature = case.terms[condition][-1].inner_temperature
             if temperature > limit.quantity.value:
-                lines.append(f"Case {case_name(case.name)}, {condition}: the outside surface is at {celsius(temperature)} °C,"
-                             f" above the site limit of {limit.text} ({limit.source or 'no source'}): burn hazard.")
+                lines.append(
+                    f"Case {case_name(case.name)}, {condition}: the outside surface is at"
+                    f" {celsius(temperature)} °C, above the site limit of {limit.text}"
+                    f" ({limit.source or 'no source'}): burn hazard."
+                )
     return lines
 
 
 def _wall(page: Page) -> list[str]:
-    return [f"{check.id}, case {case_name(check.case)}, {check.condition}: {check.figure}, limit {check.limit}; the method is"
-            " not meant for this."
-            for check in page.every_check() if check.card == "wall phase" and check.state in ("outside", "accepted")]
+    return [
+        f"{check.id}, case {case_name(check.case)}, {check.condition}: {check.figure}, limit {check.limit};"
+        " the method is not meant for this."
+        for check in page.every_check()
+        if check.card == "wall phase" and check.state in ("outside", "accepted")
+    ]
 
 
 def _excess(page: Page) -> list[str]:
@@ -251,17 +298,25 @@ def _excess(page: Page) -> list[str]:
     for case in page.solved.cases:
         excess = case.results["excess_surface"].value
         if excess > limit:
-            lines.append(f"Case {case_name(case.name)}: the excess surface for fouling is {percent(excess)}, above"
-                         f" {percent(limit)} ({origin}): the clean unit is much stronger than the one in service, and a low"
-                         " speed in an oversized unit can itself bring fouling.")
+            lines.append(
+                f"Case {case_name(case.name)}: the excess surface for fouling is {percent(excess)}, above"
+                f" {percent(limit)} ({origin}): the clean unit is much stronger than the one in service, and"
+                " a low speed in an oversized unit can itself bring fouling."
+            )
     return lines
 
 
 def _trial(page: Page) -> list[str]:
-    trial = [card.id for card in page.cards() if getattr(getattr(card, "state", None), "status", "") == "trial"]
+    trial = [
+        card.id for card in page.cards() if getattr(getattr(card, "state", None), "status", "") == "trial"
+    ]
     return [f"The card {name} is on trial: no figure from outside bears it out yet." for name in trial]
 
 
 def _criterion(page: Page) -> list[str]:
-    return [f"{item.id} is not met in case {case_name(item.case)}: {item.that}."
-            for case in page.solved.cases for item in case.criteria if not item.met]
+    return [
+        f"{item.id} is not met in case {case_name(item.case)}: {item.that}."
+        for case in page.solved.cases
+        for item in case.criteria
+        if not item.met
+    ]

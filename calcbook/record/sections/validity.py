@@ -4,10 +4,10 @@ from __future__ import annotations
 
 from calcbook.chain.outcome import CheckResult, ClosureRow, CrossRow
 from calcbook.chain.types import CONDITIONS
+from calcbook.quantities import in_unit
 from calcbook.record.blocks import Block, Heading, Paragraph, Table
 from calcbook.record.numbers import CONCLUSION_DIGITS, NOT_USED, number, percent, report_unit, unit_text
 from calcbook.record.page import Page, counted
-from calcbook.quantities import in_unit
 
 PUBLISHED = "published"
 RESIDUAL_DIGITS = 2
@@ -19,45 +19,78 @@ def validity(page: Page) -> list[Block]:
     if not page.base.checks:
         return [*blocks, Paragraph("No limit applies to this calculation.")]
     blocks.append(Paragraph(_counts(page)))
-    blocks.append(Table(("Check", "Limit", "Figure, service", "Service", "Figure, clean", "Clean", "Level", "Because",
-                         "Source"), tuple(_rows(page.base.checks))))
-    accepted = tuple((check.id, check.condition, check.accepted) for check in page.base.checks if check.accepted)
+    blocks.append(
+        Table(
+            (
+                "Check",
+                "Limit",
+                "Figure, service",
+                "Service",
+                "Figure, clean",
+                "Clean",
+                "Level",
+                "Because",
+                "Source",
+            ),
+            tuple(_rows(page)),
+        )
+    )
+    accepted = tuple(
+        (check.id, check.condition, check.accepted) for check in page.base.checks if check.accepted
+    )
     if accepted:
-        blocks += [Heading(3, "Accepted by the engineer"), Table(("Check", "Condition", "Acceptance"), accepted)]
+        blocks += [
+            Heading(3, "Accepted by the engineer"),
+            Table(("Check", "Condition", "Acceptance"), accepted),
+        ]
     return blocks
 
 
 def _counts(page: Page) -> str:
     states = [check.state for check in page.base.checks]
-    words = ", ".join(f"{states.count(state)} {state}" for state in dict.fromkeys(
-        ("within", "outside", "accepted", "not evaluable", "not counting")) if state in states)
-    return (f"{counted(len(states), 'limit evaluated', 'limits evaluated')} in the base case, each condition by itself:"
-            f" {words}. A range limit outside or not evaluable is an open item; a caution does not block.")
+    words = ", ".join(
+        f"{states.count(state)} {state}"
+        for state in dict.fromkeys(("within", "outside", "accepted", "not evaluable", "not counting"))
+        if state in states
+    )
+    return (
+        f"{counted(len(states), 'limit evaluated', 'limits evaluated')} in the base case, each condition by"
+        f" itself: {words}. A range limit outside or not evaluable is an open item; a caution does not"
+        " block."
+    )
 
 
-def _rows(checks: tuple[CheckResult, ...]) -> list[tuple[str, ...]]:
+def _rows(page: Page) -> list[tuple[str, ...]]:
     """One row per check; both conditions stand in it."""
     by_id: dict[str, dict[str, CheckResult]] = {}
-    for check in checks:
+    for check in page.base.checks:
         by_id.setdefault(check.id, {})[check.condition] = check
     rows = []
     for name, found in by_id.items():
         one = next(iter(found.values()))
         cells = []
         for condition in reversed(CONDITIONS):
-            check = found.get(condition)
-            cells += [check.figure, verdict(check)] if check is not None else [NOT_USED, NOT_USED]
+            there = found.get(condition)
+            cells += [there.figure, verdict(there)] if there is not None else [NOT_USED, NOT_USED]
         limits = dict.fromkeys(check.limit for check in found.values())
-        rows.append((name, "; ".join(limits), *cells, one.level, one.because, _source(one)))
+        rows.append((name, "; ".join(limits), *cells, one.level, one.because, _source(one, page)))
     return rows
 
 
 def verdict(check: CheckResult) -> str:
     """The state of a check in words that do not say more than the standing of its limit."""
     if check.state == "within":
-        return "within published range" if check.standing == PUBLISHED else f"within ({_standing(check.standing)})"
+        return (
+            "within published range"
+            if check.standing == PUBLISHED
+            else f"within ({_standing(check.standing)})"
+        )
     if check.state == "outside":
-        return "outside published range" if check.standing == PUBLISHED else f"outside ({_standing(check.standing)})"
+        return (
+            "outside published range"
+            if check.standing == PUBLISHED
+            else f"outside ({_standing(check.standing)})"
+        )
     if check.state == "accepted":
         return "outside, accepted with a reason"
     return "does not count here" if check.state == "not counting" else check.state
@@ -72,10 +105,11 @@ def _standing(standing: str) -> str:
     }.get(standing, standing)
 
 
-def _source(check: CheckResult) -> str:
+def _source(check: CheckResult, page: Page) -> str:
+    """Where a limit comes from: a reference of section 15, or its standing alone."""
     if not check.source or check.source == check.standing:
         return check.standing
-    return f"{check.source}; standing: {check.standing}"
+    return f"{page.reference(check.card, check.source)}; {check.standing}"
 
 
 # --- cross-check ------------------------------------------------------------------------------------
@@ -83,7 +117,10 @@ def _source(check: CheckResult) -> str:
 
 def cross_check(page: Page) -> list[Block]:
     """Other methods of the same situations in service, and closure."""
-    blocks: list[Block] = [Heading(2, "10. Cross-check and closure"), Heading(3, "Cross-check by other methods")]
+    blocks: list[Block] = [
+        Heading(2, "10. Cross-check and closure"),
+        Heading(3, "Cross-check by other methods"),
+    ]
     used = tuple(row for row in page.solved.cross if not row.left_out)
     out = tuple(row for row in page.solved.cross if row.left_out)
     if not page.solved.cross:
@@ -91,25 +128,52 @@ def cross_check(page: Page) -> list[Block]:
     if used:
         unit = unit_text(report_unit(page.base.results["U_service"].kind, page.calculation.report))
         blocks += [
-            Paragraph("Each other method within its range here is put in the place of the one used and the circuit is"
-                      " closed again. Methods of one family share an ancestor and are not independent of each other."),
-            Table(("Film", "Method", f"h in service, {unit}", f"U in service, {unit}", "Difference of U", "Family",
-                   "Independent of the method used"), tuple(_cross_row(row, page) for row in used)),
+            Paragraph(
+                "Each other method within its range here is put in the place of the one used and the"
+                " circuit is closed again. Methods of one family share an ancestor and are not independent"
+                " of each other."
+            ),
+            Table(
+                (
+                    "Film",
+                    "Method",
+                    f"h in service, {unit}",
+                    f"U in service, {unit}",
+                    "Difference of U",
+                    "Family",
+                    "Independent of the method used",
+                ),
+                tuple(_cross_row(row, page) for row in used),
+            ),
         ]
     elif out:
         blocks.append(Paragraph("No other method is within its range here."))
     if out:
-        blocks += [Paragraph("Left out:"), Table(("Film", "Method", "Why it is left out"),
-                                                 tuple((row.term, row.method, row.left_out) for row in out))]
+        blocks += [
+            Paragraph("Left out:"),
+            Table(
+                ("Film", "Method", "Why it is left out"),
+                tuple((row.term, row.method, row.left_out) for row in out),
+            ),
+        ]
     return [*blocks, *_closure(page)]
 
 
 def _cross_row(row: CrossRow, page: Page) -> tuple[str, ...]:
     kind = page.base.results["U_service"].kind
     unit = report_unit(kind, page.calculation.report)
-    coefficient, overall = (number(in_unit(value, unit), CONCLUSION_DIGITS) for value in (row.coefficient, row.overall))
-    return (row.term, f"{row.title} ({row.method})", coefficient, overall, percent(row.difference), row.family,
-            "no, same family" if row.same_family else "yes, another family")
+    coefficient, overall = (
+        number(in_unit(value, unit), CONCLUSION_DIGITS) for value in (row.coefficient, row.overall)
+    )
+    return (
+        row.term,
+        f"{row.title} ({row.method})",
+        coefficient,
+        overall,
+        percent(row.difference),
+        row.family,
+        "no, same family" if row.same_family else "yes, another family",
+    )
 
 
 # --- closure ----------------------------------------------------------------------------------------
@@ -120,15 +184,26 @@ def _closure(page: Page) -> list[Block]:
     blocks: list[Block] = [Heading(3, "Closure")]
     if not rows:
         return [*blocks, Paragraph("There is nothing to close.")]
-    words = ("Closure shows that the circuit was solved, not that its figures are right. The residual is the difference"
-             " divided by the figure it is held against.")
-    return [*blocks, Paragraph(words),
-            Table(("What", "Condition", "Value", "Against", "Unit", "Residual"), tuple(map(_closure_row, rows)))]
+    words = (
+        "Closure shows that the circuit was solved, not that its figures are right. The residual is the"
+        " difference divided by the figure it is held against."
+    )
+    return [
+        *blocks,
+        Paragraph(words),
+        Table(("What", "Condition", "Value", "Against", "Unit", "Residual"), tuple(map(_closure_row, rows))),
+    ]
 
 
 def _closure_row(row: ClosureRow) -> tuple[str, ...]:
-    return (row.what, row.condition, number(row.value, 7), number(row.against, 7), unit_text(row.unit),
-            residual(row.residual))
+    return (
+        row.what,
+        row.condition,
+        number(row.value, 7),
+        number(row.against, 7),
+        unit_text(row.unit),
+        residual(row.residual),
+    )
 
 
 def residual(value: float) -> str:

@@ -1,4 +1,7 @@
-"""Files written whole or not at all: a temporary file beside the target, flushed, then renamed over it."""
+"""Files written whole or not at all: a temporary file beside the target, flushed, then renamed over it.
+
+May import: the standard library only.
+"""
 
 from __future__ import annotations
 
@@ -8,8 +11,8 @@ import tempfile
 from pathlib import Path
 
 
-def write_whole(path: Path, text: str) -> None:
-    """Write UTF-8 text with LF line ends; whoever reads the path sees the old file or the new one.
+def write_whole(path: Path, text: str | bytes) -> None:
+    """Write bytes, or UTF-8 text with LF line ends; a reader of the path sees the old file or the new one.
 
     Raises ``OSError`` when the folder cannot be written; the old file stays.
     """
@@ -18,7 +21,7 @@ def write_whole(path: Path, text: str) -> None:
     temporary = Path(name)
     try:
         with os.fdopen(handle, "wb") as stream:
-            stream.write(text.encode("utf-8"))
+            stream.write(text.encode("utf-8") if isinstance(text, str) else text)
             stream.flush()
             os.fsync(stream.fileno())
         temporary.chmod(0o644)
