@@ -124,6 +124,7 @@ def read_text(text: str, name: str, collector: Collector | None = None) -> Docum
         place = Place(name, dashes + 1, 1, 4, lines[dashes])
         builder.collector.add("yaml-several-documents", place, "the file holds more than one document",
                               expected="one document, without a line of three dashes in it")
+        builder.collector.stop_if_any()
     root = builder.build(nodes[0], 0)
     if collector is None:
         builder.collector.stop_if_any()
@@ -243,8 +244,8 @@ class _Builder:
         """A node of our tree; a mapping or list in lines of its own stands at its ``key``."""
         place = _place(node, self.name, self.lines)
         if id(node) in self.seen:
-            self.collector.add("yaml-alias", place, "a YAML alias repeats an earlier part",
-                               expected="the value itself, written out")
+            self.collector.add("yaml-alias", self._alias(place), "a YAML alias repeats an earlier part",
+                               found=f"what stands on line {place.line}", expected="the value itself, written out")
             return Scalar("alias", place, "quoted")
         self.seen.add(id(node))
         self._look_for_mark(place)
@@ -259,6 +260,16 @@ class _Builder:
         if isinstance(node, yaml.SequenceNode):
             return Sequence(tuple(self.build(item, depth + 1) for item in node.value), place)
         return self._mapping(node, place, depth, key)
+
+    def _alias(self, anchored: Place) -> Place:
+        """Where the alias of a node stands: the parser gives the place of the anchor only."""
+        name = re.match(r"&([\w-]+)", anchored.excerpt[anchored.column - 1 :])
+        pattern = re.compile(rf"(?:^|[\s,\[{{])(\*{name.group(1)})(?![\w-])") if name is not None else None
+        for number in range(anchored.line - 1, len(self.lines) if pattern is not None else 0):
+            found = pattern.search(self.lines[number]) if pattern is not None else None
+            if found is not None:
+                return Place(self.name, number + 1, found.start(1) + 1, found.end(1) + 1, self.lines[number])
+        return anchored
 
     def _look_for_mark(self, place: Place) -> None:
         first = place.excerpt[place.column - 1 : place.column]
@@ -358,12 +369,11 @@ def _suspects(error: yaml.YAMLError, name: str, lines: list[str], text: list[str
         colon = re.search(r"^\s*(?:- )?[^\s#'\"{\[][^#'\"{\[]*?: +[^'\"{\[|>\s].*?(:)(?= |$)", text[number])
         if colon:
             yield (Fault("colon-in-text", place(number, colon.start(1), colon.end(1)),
-                         "`: ` inside a text starts a new key",
-                         shown(lines[number].strip()), "the whole text in quotes"),
+                         "`: ` inside a text starts a new key", "", "the whole text in quotes"),
                    mended(number, colon.start(1), ";"))
         for start in _colons_in_braces(text[number]):
-            yield (Fault("colon-in-text", place(number, start, start + 1), "`: ` inside a text starts a new key",
-                         shown(lines[number].strip()), "the whole text in quotes"), mended(number, start, ";"))
+            yield (Fault("colon-in-text", place(number, start, start + 1), "`: ` inside a text starts a new key", "",
+                         "the whole text in quotes"), mended(number, start, ";"))
     bracket = re.search(r"[:,{] *[^\s,:{}\[\]'\"][^,:{}\[\]]*(\[[^\[\]{}]*\]|\{[^\[\]{}]*\})", _unquoted(text[line]))
     if bracket:
         start, end = bracket.span(1)
@@ -560,7 +570,10 @@ def read_mapping(node: Node | None, description: Description, collector: Collect
         elif _shape_holds(key, value, known, collector):
             fields.nodes[key.text] = value
             fields.key_places[key.text] = key.place
-    _report_missing(fields, description, collector, set(key.text for key, _ in node.entries))
+    # a mistyped key is told as such, not as missing too
+    written = {key.text for key, _ in node.entries}
+    meant = {name for key in written - set(description.names()) for name in nearest_names(key, description.names(), 1)}
+    _report_missing(fields, description, collector, written | meant)
     return fields
 
 

@@ -81,6 +81,7 @@ class _Reader:
         self.fields = read_mapping(document.root, described.FILE, collector, self.place)
         self.fluids: dict[str, FluidText | None] = {}
         self.broken: set[str] = set()
+        self.symbols: tuple[str, ...] = ()
         self.terms_hold = True
 
     def calculation(self) -> Calculation:
@@ -89,6 +90,7 @@ class _Reader:
         derived = self.derived(givens)
         self.fluids = {key.text: self.fluid_record(key.text, value) for key, value in self.entries("fluids")}
         terms = self.terms(self.fields.node("resistances"))
+        cases = self.cases(givens)
         return Calculation(
             file=self.document.name,
             number=self.number(head),
@@ -107,8 +109,8 @@ class _Reader:
             resistances=terms if self.terms_hold else (),
             acceptance=self.acceptance(),
             report=self.report(),
-            cases=self.cases(givens),
-            accept=self.accept(),
+            cases=cases,
+            accept=self.accept(cases),
             settings=self.settings,
             meaning=meaning_of(self.document.root),
             place=self.place,
@@ -295,6 +297,7 @@ class _Reader:
 
     def derived(self, givens: Mapping[str, Given]) -> dict[str, Derived]:
         result = {}
+        relations: dict[str, Scalar] = {}
         for key, node in self.entries("derived"):
             self.check_symbol(key)
             if key.text in givens or key.text in self.broken:
@@ -309,10 +312,31 @@ class _Reader:
                 continue
             place = scalar.part(1, len(scalar.text) + 1)
             result[key.text] = Derived(key.text, relation, fields.text("is"), place)
+            relations[key.text] = scalar
+        self.symbols = (*givens, *self.broken, *result)
+        for name, item in result.items():
+            if not self.symbols_known(item.relation, relations[name], name):
+                self.broken.add(name)
         return self.without_broken(result)
 
+    def symbols_known(self, relation: Relation, scalar: Scalar, but: str = "") -> bool:
+        """Whether a relation has symbols of this file only; each that is unknown is a fault."""
+        unknown = [symbol for symbol in relation.symbols if symbol not in self.symbols]
+        for symbol in unknown:
+            found = re.search(rf"(?<![A-Za-z0-9_.]){re.escape(symbol)}(?![A-Za-z0-9_(])", scalar.text)
+            place = scalar.part(found.start() + 1, found.end() + 1) if found is not None else scalar.place
+            self.report_symbol(symbol, place, but)
+        return not unknown
+
+    def report_symbol(self, symbol: str, place: Place, but: str = "") -> None:
+        known = [name for name in self.symbols if name != but]
+        self.collector.add("symbol-unknown", place, f"`{shown(symbol)}` is neither a given nor derived",
+                           found=shown(symbol), expected=", ".join(known) or "a given of that symbol",
+                           nearest=nearest_names(symbol, known))
+
     def without_broken(self, derived: dict[str, Derived]) -> dict[str, Derived]:
-        """The derived quantities that rest on no symbol with a fault of its own."""
+        """The derived quantities that have no fault and rest on no symbol that has one."""
+        derived = {name: item for name, item in derived.items() if name not in self.broken}
         while True:
             broken = {name for name, item in derived.items() if self.broken & set(item.relation.symbols)}
             if not broken:
@@ -489,7 +513,6 @@ class _Reader:
         value_keys = ("coefficient", "resistance", "temperature", "conductivity", "thickness", "outside diameter",
                       "emissivity", "surroundings")
         values = {key: value for key in value_keys if (value := self.value(fields.node(key))) is not None}
-        scales = self.relation(fields.scalar("scales with"))
         return Term(
             name=name,
             kind=kind,
@@ -501,8 +524,15 @@ class _Reader:
             deposit=self.deposit(fields.node("deposit")),
             includes=self.names_of(fields.node("includes")),
             holds_for=self.range_of(fields.node("holds for")),
-            scales_with=scales if scales is not None and not self.broken & set(scales.symbols) else None,
+            scales_with=self.factor(fields.scalar("scales with")),
         )
+
+    def factor(self, scalar: Scalar | None) -> Relation | None:
+        """The relation of `scales with`; None where a symbol of it has a fault."""
+        relation = self.relation(scalar)
+        if scalar is None or relation is None or not self.symbols_known(relation, scalar):
+            return None
+        return None if self.broken & set(relation.symbols) else relation
 
     def term_kind(self, fields: Fields, node: Node) -> str:
         """The kind of a term, with its keys checked; a mistyped kind is read on as the nearest one."""
@@ -533,7 +563,9 @@ class _Reader:
     def check_term_name(self, fields: Fields, name: str) -> None:
         if "/" in name or name in CLASHING_NAMES or name.startswith(CLASHING_STARTS):
             self.collector.add("name-not-allowed", fields.place_of("name"), f"a term cannot be called `{shown(name)}`",
-                               found=shown(name), expected="a name without /, such as tube-side film")
+                               found=shown(name),
+                               expected="a name without /, such as tube-side film, that does not start with a word"
+                               " such as given, derived, stream or case")
 
     def parallel(self, fields: Fields, name: str) -> Term:
         for key in fields:
@@ -585,6 +617,9 @@ class _Reader:
         entries = node.entries if isinstance(node, MappingNode) else ()
         if len(entries) == 1 and isinstance(entries[0][1], Scalar):
             key, scalar = entries[0]
+            if key.text not in (*self.symbols, "flow", "temperature", "pressure"):
+                self.report_symbol(key.text, key.place)
+                return None
             parts = re.fullmatch(r"\s*(.*?\S)\s*\.\.\s*(\S.*?)\s*", scalar.text)
             if parts is not None:
                 ends = [self.range_end(scalar, *parts.span(number)) for number in (1, 2)]
@@ -624,6 +659,8 @@ class _Reader:
             return None
         limit = self.scalar_value(Scalar(match.group(3), scalar.part(match.start(3) + 1, match.end(3) + 1)), source,
                                   bool(source))
+        if limit.symbol and limit.symbol not in self.symbols:
+            self.report_symbol(limit.symbol, limit.place)
         result = " ".join(match.group(1).split())
         place = scalar.part(match.start(1) + 1, match.end(1) + 1)
         return Criterion(" ".join(scalar.text.split()), result, match.group(2), limit, source, place)
@@ -708,7 +745,7 @@ class _Reader:
             return None
         return given
 
-    def accept(self) -> tuple[Acceptance, ...]:
+    def accept(self, cases: Mapping[str, Mapping[str, Given]]) -> tuple[Acceptance, ...]:
         result = []
         for item in self.items("accept"):
             fields = read_mapping(item, described.ACCEPT, self.collector, item.place)
@@ -718,6 +755,12 @@ class _Reader:
             if not direction:
                 self.collector.add("key-missing", fields.place, "an accepted check states its bound",
                                    expected="down to: … or up to: … (of the checked figure)")
+            known = ("all", "clean", "service", *cases)
+            within = fields.scalar("in")
+            if within is not None and within.text not in known:
+                self.collector.add("accept-unknown", within.place, f"`{shown(within.text)}` is no condition or case",
+                                   found=shown(within.text), expected=", ".join(known),
+                                   nearest=nearest_names(within.text, known))
             check = " / ".join(part.strip() for part in fields.text("check").split("/"))
             result.append(Acceptance(check, fields.text("in") or "all", direction, bound, fields.text("because"),
                                      fields.text("by"), self.date(fields, "date"), fields.place_of("check")))

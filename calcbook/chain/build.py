@@ -11,6 +11,7 @@ from calcbook.chain.scope import Scope
 from calcbook.chain.streams import lay_out_stream
 from calcbook.chain.surfaces import Shape, Wall, lay_out_shape
 from calcbook.chain.types import (
+    SERVICE_FLAG,
     Branch,
     Candidate,
     Chain,
@@ -280,7 +281,13 @@ class _Builder:
             text, inputs["d_o"] = "d_o*ln((d_o + 2*t)/d_o)/(2*k)", shape.surfaces[surface].diameter
         resistance = self.scope.relation_step(f"{term.name}/R", "R_f", "area resistance of the deposit", term.name,
                                               parse_expression(text), inputs, "deposit", "area resistance")
-        return Layer(term.name, term.kind, surface, resistance)
+        checks = ()
+        if "d_i" in inputs:
+            limit = Limit("bore", parse_expression("2*t < d_i"), "stop", "the deposit leaves a bore", "common practice",
+                          "common practice", term.deposit.place)
+            checks = (ChainCheck(f"{term.name} / deposit / bore", term.name, "deposit", limit,
+                                 {"t": thickness, "d_i": inputs["d_i"]}),)
+        return Layer(term.name, term.kind, surface, resistance, checks=checks)
 
     # -- walls --------------------------------------------------------------------------------------
 
@@ -429,12 +436,43 @@ class _Builder:
         if stream is None:
             return None
         self.scope.cards[f"situation {situation.id}"] = situation.digest_text
-        film = FilmScope(self.scope, self.library, term, group, shape.dimensions, stream, situation)
+        dimensions, moved = self._wetted(shape, side)
+        film = FilmScope(self.scope, self.library, term, group, dimensions, stream, situation, deposit_surface=moved)
         self._check_with(term, situation, film)
         branch = film.branch()
         for candidate in branch.candidates if branch is not None else ():
             self._card_state(candidate.method.id, candidate.method.state.status, candidate.method.state.successor, term)
         return branch
+
+    def _wetted(self, shape: Shape, side: str) -> tuple[dict[str, str], tuple[str, str] | None]:
+        """Dimensions of the surface a film touches: a deposit that narrows moves it in service."""
+        key = "inside diameter" if side == "inside" else "outside diameter"
+        layers = self._narrowing(side)
+        if not layers or shape.name != "tube":
+            return shape.dimensions, None
+        metal = wetted = shape.dimensions[key]
+        sign = "-" if side == "inside" else "+"
+        self.scope.constant(SERVICE_FLAG, 1.0)
+        for term in layers:
+            assert term.deposit is not None
+            thickness = self.scope.value(term.deposit.thickness, "thickness", term.name, "thickness")
+            if not thickness:
+                return shape.dimensions, None
+            wetted = self.scope.relation_step(
+                f"{term.name}/wetted diameter", "d_n", f"{key} over {term.name} (s = 1 in service, 0 clean)", term.name,
+                parse_expression(f"d {sign} 2*t*s"), {"d": wetted, "t": thickness, "s": SERVICE_FLAG}, "deposit", key)
+        self.scope.assume(f"{layers[0].name}/narrows", f"The deposit moves the {side} surface that the fluid touches; the"
+                          " film is referred to the metal.", "`narrows: yes`", layers[0].name)
+        return {**shape.dimensions, key: wetted}, (wetted, metal)
+
+    def _narrowing(self, side: str) -> list[Term]:
+        """The fouling terms on a side whose deposit narrows the flow."""
+        terms = self.calculation.resistances
+        walls = [index for index, term in enumerate(terms) if term.kind == "wall"]
+        if not walls:
+            return []
+        part = terms[: walls[0]] if side == "inside" else terms[walls[-1] :]
+        return [term for term in part if term.deposit is not None and term.deposit.narrows]
 
     def _check_with(self, term: Term, situation, film: FilmScope) -> None:  # type: ignore[no-untyped-def]
         """Every entry of `with:` must be asked for by the situation or one of its methods."""

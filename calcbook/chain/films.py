@@ -43,6 +43,7 @@ class FilmScope:
     situation: Situation | None = None
     missing: set[str] = field(default_factory=set)
     candidates: frozenset[str] = frozenset()
+    deposit_surface: tuple[str, str] | None = None
 
     # -- temperatures and properties ------------------------------------------------------------------
 
@@ -347,8 +348,18 @@ class FilmScope:
         inputs = {"Nu": result, "lam": self.property("conductivity", card.properties_at), "L_c": self.length()}
         if not all(inputs.values()):
             return ""
-        return self.scope.relation_step(f"{self.owner}/{card.id}/h", "h", "film coefficient", self.owner,
-                                        parse_expression("Nu*lam/L_c"), inputs, card.id, "film coefficient")
+        coefficient = self.scope.relation_step(f"{self.owner}/{card.id}/h", "h", "film coefficient", self.owner,
+                                               parse_expression("Nu*lam/L_c"), inputs, card.id, "film coefficient")
+        return self.referred(card, coefficient)
+
+    def referred(self, card: Method, coefficient: str) -> str:
+        """The coefficient on the metal's surface, where a deposit moves the surface that the fluid touches."""
+        if self.deposit_surface is None:
+            return coefficient
+        wetted, metal = self.deposit_surface
+        return self.scope.relation_step(f"{self.owner}/{card.id}/h on metal", "h_m", "film coefficient on the metal surface",
+                                        self.owner, parse_expression("h*d_n/d"),
+                                        {"h": coefficient, "d_n": wetted, "d": metal}, "areas", "film coefficient")
 
     def checks(self, program: Program, names: Mapping[str, str]) -> tuple[ChainCheck, ...]:
         """The limits of a method and of the cards it uses, each with bound inputs."""

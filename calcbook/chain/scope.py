@@ -65,8 +65,11 @@ class Scope:
             try:
                 found = dimension(operation.relation, local)
             except RelationFault as error:
-                self.collector.add("dimension-slip", place or self.calculation.place, f"{title}: {error.message}",
-                                   found=shown(operation.relation.text, 100))
+                where, text = place or self.calculation.place, operation.relation.text
+                if where.excerpt[where.column - 1 :].startswith(text):
+                    where = where.part(error.column - 1, error.end_column - error.column)
+                self.collector.add("dimension-slip", where, f"{title}: {error.message}", found=shown(text, 100),
+                                   expected=error.expected or "quantities whose units fit")
         if kind is None or kind.dimension != found:
             kind = _unnamed(symbol, found)
         self.dimensions[name] = found
@@ -80,16 +83,18 @@ class Scope:
         return self.step(name, symbol, title, owner, RelationOperation(relation), inputs, basis, known, place)
 
     def value(self, value: Value | None, kind_name: str, owner: str, key: str) -> str:
-        """The id of a figure of the file, read as a quantity of the vocabulary; empty when it cannot be."""
+        """The id of a figure of the file, read as a quantity of the vocabulary; empty where none is written."""
         if value is None:
             return ""
         kind = vocabulary()[kind_name]
         if value.is_broken or value.symbol in self.calculation.broken:
-            # its fault is told; the chain goes on to its other faults as if the figure were there
-            return self.constant(f"unread {kind.name}", float("nan"), kind.dimension)
-        if value.symbol:
-            return self._named(value, kind, owner, key)
-        return self._literal(value, kind, owner, key)
+            return self.unread(kind)
+        read = self._named if value.symbol else self._literal
+        return read(value, kind, owner, key) or self.unread(kind)
+
+    def unread(self, kind: QuantityKind) -> str:
+        """The id that stands for a figure with a fault: the chain goes on to its other faults with it."""
+        return self.constant(f"unread {kind.name}", float("nan"), kind.dimension)
 
     def _named(self, value: Value, kind: QuantityKind, owner: str, key: str) -> str:
         symbol = value.symbol
@@ -108,7 +113,7 @@ class Scope:
     def _derived(self, value: Value, kind: QuantityKind) -> str:
         name = f"derived/{value.symbol}"
         if name not in self.dimensions:
-            return self.constant(f"unread {kind.name}", float("nan"), kind.dimension)
+            return ""
         if self.dimensions[name] != kind.dimension:
             self.collector.add("unit-dimension", value.place, f"`{value.symbol}` is no {kind.name}",
                                found=si_unit(self.dimensions[name]), expected=kind.unit)

@@ -15,7 +15,7 @@ import numpy as np
 
 from calcbook.chain.build import follows_temperature
 from calcbook.chain.circuit import branch_coefficient
-from calcbook.chain.types import CLEAN, Branch, Candidate, Chain, ChainStep, Group, Layer
+from calcbook.chain.types import CLEAN, SERVICE_FLAG, Branch, Candidate, Chain, ChainStep, Group, Layer
 from calcbook.formulas import evaluate
 from calcbook.library.operations import Slopes, run
 
@@ -152,6 +152,7 @@ class Engine:
         self.single = all(value.ndim == 0 for value in inputs.values())
         self.everything = np.arange(size)
         self.values: dict[str, Array] = dict(chain.constants)  # type: ignore[arg-type]
+        self.values[SERVICE_FLAG] = np.asarray(float(condition != CLEAN))
         self.values.update(inputs)
         self.moving = [element for element in chain.elements if follows_temperature(element)]
         # The number of a moving element; elements themselves are compared by all they hold, which takes long.

@@ -28,11 +28,15 @@ def lay_out_stream(scope: Scope, stream: Stream) -> StreamState | None:
         fraction = scope.value(fluid.text.fraction, "mass fraction", owner, fluid.text.basis)
     flow_kind = _flow_kind(scope, stream.flow)
     flow = scope.value(stream.flow, flow_kind, owner, "flow") if flow_kind else ""
+    if stream.flow is not None and not flow:
+        flow, flow_kind = scope.unread(vocabulary()["speed"]), "speed"
+    assert stream.temperature is not None
+    place = stream.temperature.place
     state = StreamState(stream.name, fluid, _provider(scope, fluid, stream), stream.phase, temperature, pressure,
-                        fraction, flow, flow_kind if flow else "", "", stream.place)
+                        fraction, flow, flow_kind, "", place)
     mass_flow = _mass_flow(scope, stream, state) if flow else ""
     return StreamState(state.name, state.fluid, state.fluid_name, state.phase, temperature, pressure, fraction, flow,
-                       state.flow_kind, mass_flow, stream.place)
+                       state.flow_kind, mass_flow, place)
 
 
 def _provider(scope: Scope, fluid: FluidSource, stream: Stream) -> str:
@@ -131,13 +135,14 @@ def _flow_kind(scope: Scope, flow: Value | None) -> str:
     if flow is None:
         return ""
     if flow.is_broken or flow.symbol in scope.calculation.broken:
-        return "speed"
+        return ""
     if flow.symbol:
         given = scope.calculation.givens.get(flow.symbol)
         dim = given.value.quantity.dimension if given is not None and given.value.quantity else scope.dimensions.get(
             f"derived/{flow.symbol}")
-        if dim is None:
+        if dim is None and flow.symbol not in scope.calculation.derived:
             scope.value(flow, "mass flow", "stream", "flow")
+        if dim is None:
             return ""
     else:
         dim = flow.quantity.dimension if flow.quantity is not None else None

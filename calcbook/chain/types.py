@@ -20,6 +20,8 @@ from calcbook.quantities import QuantityKind
 Array = np.ndarray
 CLEAN, SERVICE = "clean", "service"
 CONDITIONS = (CLEAN, SERVICE)
+# The figure that is 1 in service and 0 clean: it narrows a bore by a deposit.
+SERVICE_FLAG = "condition/service"
 
 
 @dataclass(frozen=True, slots=True)
@@ -276,6 +278,7 @@ __all__ = [
     "CLEAN",
     "CONDITIONS",
     "SERVICE",
+    "SERVICE_FLAG",
     "Branch",
     "Candidate",
     "Chain",
