@@ -361,6 +361,11 @@ def _suspects(error: yaml.YAMLError, name: str, lines: list[str], text: list[str
     def mended(number: int, start: int, new: str) -> list[str]:
         return [*text[:number], text[number][:start] + new + text[number][start + 1 :], *text[number + 1 :]]
 
+    def quiet(number: int, start: int, end: int) -> list[str]:
+        """Without the `: ` from ``start`` on: one text gives one fault."""
+        rest = re.sub(r":(?= |$)", ";", text[number][start:end])
+        return [*text[:number], text[number][:start] + rest + text[number][end:], *text[number + 1 :]]
+
     for number, start in _comments_in_braces(text, line):
         yield (Fault("comment-cuts-text", place(number, start, len(lines[number])),
                      "` #` starts a comment inside { } and cuts the text short",
@@ -370,10 +375,10 @@ def _suspects(error: yaml.YAMLError, name: str, lines: list[str], text: list[str
         if colon:
             yield (Fault("colon-in-text", place(number, colon.start(1), colon.end(1)),
                          "`: ` inside a text starts a new key", "", "the whole text in quotes"),
-                   mended(number, colon.start(1), ";"))
-        for start in _colons_in_braces(text[number]):
+                   quiet(number, colon.start(1), len(text[number])))
+        for start, end in _colons_in_braces(text[number]):
             yield (Fault("colon-in-text", place(number, start, start + 1), "`: ` inside a text starts a new key", "",
-                         "the whole text in quotes"), mended(number, start, ";"))
+                         "the whole text in quotes"), quiet(number, start, end))
     bracket = re.search(r"[:,{] *[^\s,:{}\[\]'\"][^,:{}\[\]]*(\[[^\[\]{}]*\]|\{[^\[\]{}]*\})", _unquoted(text[line]))
     if bracket:
         start, end = bracket.span(1)
@@ -443,8 +448,8 @@ def _comments_in_braces(lines: list[str], last: int) -> Iterator[tuple[int, int]
                 yield number, match.start()
 
 
-def _colons_in_braces(line: str) -> Iterator[int]:
-    """Where a second `: ` stands between two commas inside `{ }`."""
+def _colons_in_braces(line: str) -> Iterator[tuple[int, int]]:
+    """Where a second `: ` stands between two commas inside `{ }`, and where its text ends."""
     plain = _unquoted(line)
     opening = plain.find("{")
     seen = False
@@ -453,7 +458,9 @@ def _colons_in_braces(line: str) -> Iterator[int]:
             seen = False
         elif plain[start] == ":" and plain[start + 1 : start + 2] in (" ", ""):
             if seen:
-                yield start
+                end = re.search(r"[,{}\[\]]|$", plain[start:])
+                assert end is not None
+                yield start, start + end.start()
             seen = True
 
 
@@ -629,11 +636,8 @@ def _shape_holds(key: Scalar, value: Node, known: Key, collector: Collector) -> 
                       expected=_keys_of(known))
         return False
     if known.kind == "list":
-        if isinstance(value, Sequence) and value.items:
-            return True
         if isinstance(value, Sequence):
-            collector.add("value-missing", key.place, f"`{name}` is an empty list", expected=known.meaning)
-            return False
+            return True
         collector.add("list-expected", value.place, f"`{name}` must be a list",
                       found="a mapping" if isinstance(value, Mapping) else shown(value.text),
                       expected=f"lines that start with a hyphen: {known.meaning}")

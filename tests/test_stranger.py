@@ -8,6 +8,7 @@ printed resistances, and from the printed films, deposits and walls.
 from __future__ import annotations
 
 import ast
+import bisect
 import itertools
 import math
 import operator
@@ -27,8 +28,8 @@ THIN, MINUS = "\u2009", "\u2212"
 NUMBER = rf"{MINUS}?\d[\d{THIN}]*(?:\.\d+)?(?:e{MINUS}?\d+)?"
 CHAIN_COLUMNS = ["Quantity", "Relation", "Values put in", "Clean", "Service", "Unit", "Basis"]
 UNUSED = "not used"
-# Rows that name a state of a fluid or a sum in words; the page cannot evaluate a fluid.
-WORDS = ("property", "phase of the fluid", "sum of ")
+# Rows that name a state of a fluid in words; the page cannot evaluate a fluid.
+WORDS = ("property", "phase of the fluid")
 
 
 # --- the page as tables -----------------------------------------------------------------------------
@@ -47,10 +48,11 @@ class Part:
 
 @dataclass
 class PageRead:
-    """The page: its tables in order, and its sentences with the heading they stand under."""
+    """The page: its tables, its sentences under their headings, its bullets under heading and sentence."""
 
     tables: list[Part] = field(default_factory=list)
     sentences: list[tuple[str, str, str]] = field(default_factory=list)
+    bullets: list[tuple[str, str, str]] = field(default_factory=list)
 
     def tables_with(self, *columns: str) -> list[Part]:
         return [part for part in self.tables if list(columns) == part.columns[: len(columns)]]
@@ -61,7 +63,7 @@ def read_page(text: str) -> PageRead:
     tokens = MarkdownIt("commonmark").enable("table").parse(text)
     page = PageRead()
     section = term = before = ""
-    level, current = "", None
+    level, current, in_list = "", None, False
     for token, following in zip(tokens, [*tokens[1:], None], strict=True):
         if token.type == "heading_open":
             level = token.tag
@@ -70,6 +72,8 @@ def read_page(text: str) -> PageRead:
             page.tables.append(current)
         elif token.type == "table_close":
             current = None
+        elif token.type in ("bullet_list_open", "bullet_list_close"):
+            in_list = token.type == "bullet_list_open"
         elif token.type == "tr_open" and current is not None:
             current.rows.append([])
         elif token.type == "inline":
@@ -79,6 +83,8 @@ def read_page(text: str) -> PageRead:
                 level = ""
             elif current is not None:
                 current.rows[-1].append(content)
+            elif in_list:
+                page.bullets.append((term, before, content))
             else:
                 before = content
                 page.sentences.append((section, term, content))
@@ -129,6 +135,8 @@ COMPARISONS = {
     ast.Eq: operator.eq,
     ast.NotEq: operator.ne,
 }
+# Standard gravity, the Stefan-Boltzmann constant (CODATA 2018), and the one of a single tube or metre.
+EXACT = (9.80665, 5.670374419e-8, 1.0)
 NAMES = {"pi": math.pi, "yes": True, "no": False}
 Materials = dict[str, list[tuple[float, float]]]
 
@@ -239,19 +247,68 @@ def evaluated_rows(page: PageRead) -> Iterator[tuple[str, str, str]]:
             if values == UNUSED:
                 yield "unused", where, "" if service == UNUSED else "a value without the values put in"
             elif relation.startswith(WORDS):
-                yield (
-                    "words",
-                    where,
-                    ""
-                    if relation.startswith("sum of") or property_agrees(page, quantity, service)
-                    else (f"{service} {unit} does not stand in the properties table"),
-                )
+                shown = property_agrees(page, service)
+                yield "words", where, "" if shown else f"{service} {unit} stands in no properties table"
+            elif relation.startswith("sum of "):
+                yield "sum", where, sum_fault(relation, values, service)
             elif relation.startswith("table "):
                 yield "table", where, table_row_fault(page, relation, values, service)
             elif relation.startswith("root "):
                 yield "root", where, root_fault(values, service)
             else:
                 yield "relation", where, relation_fault(values, service, held.get(term_of(part)))
+
+
+CLEAN_LEAD = "Clean, where it differs, with the clean values put in:"
+
+
+def clean_rows(page: PageRead) -> Iterator[tuple[str, str]]:
+    """Every clean value that stands beneath a chain table: where it is, and what is wrong with it."""
+    held = materials(page)
+    for term, lead, bullet in page.bullets:
+        if lead != CLEAN_LEAD or bullet.count(" = ") != 2:
+            continue
+        quantity, values, result = bullet.split(" = ")
+        shown = re.match(NUMBER, result)
+        if shown and not re.search(r"\d K \(", values):
+            yield (
+                f"{term}, {quantity}, clean",
+                relation_fault(values, shown[0], held.get(term.split(": ")[0])),
+            )
+
+
+def unseen_figures(page: PageRead) -> Iterator[tuple[str, str]]:
+    """Figures put into a row that stand nowhere else on the page, neither as a value nor in the relation."""
+    shown = sorted(figures_shown(page))
+    for part in chain_tables(page):
+        for quantity, relation, values, *_ in part.rows:
+            if values == UNUSED or relation.startswith(WORDS):
+                continue
+            own = {number(text) for text in re.findall(NUMBER, relation)}
+            for text in re.findall(NUMBER, values):
+                figure = number(text)
+                if abs(figure) not in own and not is_shown(abs(figure), text, shown):
+                    yield f"{part.term}, {quantity}", text
+
+
+def figures_shown(page: PageRead) -> set[float]:
+    """Every number of the page outside the cells of values."""
+    found = set(EXACT)
+    for part in page.tables:
+        skipped = part.columns.index("Values put in") if part.columns == CHAIN_COLUMNS else -1
+        for row in part.rows:
+            for place, cell in enumerate(row):
+                if place != skipped:
+                    found |= {abs(number(text)) for text in re.findall(NUMBER, cell)}
+    for _, _, sentence in (*page.sentences, *page.bullets):
+        found |= {abs(number(text)) for text in re.findall(NUMBER, sentence)}
+    return found
+
+
+def is_shown(figure: float, text: str, shown: list[float]) -> bool:
+    """Whether a figure stands among those shown; both are rounded, by 5e-5 of themselves at most."""
+    place = bisect.bisect_left(shown, figure * (1.0 - 5e-5) - 1e-300)
+    return place < len(shown) and shown[place] <= figure * (1.0 + 5e-5) + half_unit(text)
 
 
 def relation_fault(values: str, service: str, material: list[tuple[float, float]] | None) -> str:
@@ -261,6 +318,20 @@ def relation_fault(values: str, service: str, material: list[tuple[float, float]
     # A half unit of the last printed digit; the rest is the rounding of doubles.
     off = abs(float(found) - number(service))
     return "" if off <= half_unit(service) * (1.0 + 1e-9) else f"{values} = {found}, printed {service}"
+
+
+def sum_fault(relation: str, values: str, service: str) -> str:
+    """A sum over whole numbers, term by term."""
+    words = re.fullmatch(r"sum of (.+) for (\w+) = 0 to (\d+)", relation)
+    assert words, relation
+    known = dict(item.split(" = ") for item in values.split(" with ")[1].split(", "))
+    total = 0.0
+    for index in range(int(words[3]) + 1):
+        put_in = {**known, words[2]: str(index)}
+        line = re.sub(r"[^\W\d]\w*", lambda name: put_in.get(name[0], name[0]), words[1])  # noqa: B023
+        total += float(evaluate(line))
+    # Figures put in carry seven digits, which moves a fifth digit only at its very edge.
+    return "" if abs(total - number(service)) <= 1.01 * half_unit(service) else f"{relation}: {total}"
 
 
 def root_fault(values: str, service: str) -> str:
@@ -300,7 +371,7 @@ def _row_holds(cells: dict[str, str], wanted: dict[str, str]) -> bool:
     return True
 
 
-def property_agrees(page: PageRead, quantity: str, service: str) -> bool:
+def property_agrees(page: PageRead, service: str) -> bool:
     """A property of the chain must be one that the properties table shows."""
     if service in ("yes", "no"):
         return True
@@ -395,6 +466,11 @@ def check_record(text: str) -> dict[str, int]:
         counts[kind] = counts.get(kind, 0) + 1
         if fault:
             faults.append(f"{where}: {fault}")
+    for where, fault in clean_rows(page):
+        counts["clean"] = counts.get("clean", 0) + 1
+        if fault:
+            faults.append(f"{where}: {fault}")
+    faults += [f"{where}: {text} stands nowhere else on the page" for where, text in unseen_figures(page)]
     assert not faults, "\n".join(faults)
     assert counts.get("relation", 0) >= 5, f"hardly a row to evaluate: {counts}"
     printed, half = printed_overall(page)

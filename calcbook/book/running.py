@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
+from typing import TypeVar
 
 from calcbook.book.finding import Found
 from calcbook.chain.outcome import Solved
@@ -13,6 +14,7 @@ from calcbook.interface import NotConverged, solve_file
 
 RECORD, RESULTS = "record.md", "results.json"
 PARALLEL_FROM = 8
+Product = TypeVar("Product")
 CONCLUSION_DIGITS = 3
 
 
@@ -59,15 +61,20 @@ class Texts:
 
 
 def _solved(files: Sequence[Found], jobs: int) -> Iterator[Outcome | Texts]:
-    if jobs == 1 or len(files) < PARALLEL_FROM:
-        yield from map(_texts, files)
+    yield from pool_map(_texts, files, jobs if len(files) >= PARALLEL_FROM else 1)
+
+
+def pool_map(work: Callable[[Found], Product], items: Sequence[Found], jobs: int) -> Iterator[Product]:
+    """The products of items in order, over ``jobs`` processes; in this one where one is enough."""
+    if jobs == 1:
+        yield from map(work, items)
         return
     import multiprocessing
     from concurrent.futures import ProcessPoolExecutor
 
     context = multiprocessing.get_context("spawn")
     with ProcessPoolExecutor(max_workers=jobs, mp_context=context) as pool:
-        yield from pool.map(_texts, files, chunksize=max(1, min(16, len(files) // (4 * jobs))))
+        yield from pool.map(work, items, chunksize=max(1, min(16, len(items) // (4 * jobs))))
 
 
 def _texts(found: Found) -> Outcome | Texts:

@@ -492,6 +492,10 @@ class _Reader:
     def terms(self, node: Node | None) -> tuple[Term, ...]:
         result: list[Term] = []
         names: dict[str, Place] = {}
+        if isinstance(node, Sequence) and not node.items:
+            self.terms_hold = False
+            self.collector.add("value-missing", node.place, "a list of terms is empty",
+                               expected="terms in order, from the inside to the outside")
         for index, item in enumerate(node.items if isinstance(node, Sequence) else ()):
             term = self.term(item, index)
             result.append(term)

@@ -21,7 +21,7 @@ from calcbook.library.operations import Slopes, run
 
 Array = np.ndarray
 # Samples solved together: arrays of this size stay in the processor's cache.
-PIECE = 8192
+PIECE = 16384
 # A law that is met less well than this at the end has no answer there.
 RESIDUAL_TOLERANCE = 1e-10
 # Four roundings of a temperature, relative: so well is a surface temperature known.
@@ -113,7 +113,7 @@ class _Joined:
             if len(value) == self.size:
                 place[name] = value
                 return
-            place[name] = np.full(self.size, absent, dtype=value.dtype)
+            place[name] = np.full(self.size, False if value.dtype == bool else absent, dtype=value.dtype)
         place[name][piece] = value
 
     def solution(self) -> Solution:

@@ -12,7 +12,7 @@ import importlib
 
 import click
 
-COMMANDS = ("run", "new", "library", "verify", "schema")
+COMMANDS = ("run", "new", "library", "verify", "schema", "sign", "issue", "revise", "register", "audit")
 
 
 class _Commands(click.Group):

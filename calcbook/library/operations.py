@@ -86,12 +86,22 @@ class LookupOperation:
 
     def _step(self, figures: Array) -> Array:
         low, high = self._cells("from"), self._cells("to")
-        at_end = (figures[None, :] == high[:, None]) & (high[:, None] == high.max())
+        is_first, is_last = self._ends(low, high)
+        at_end = (figures[None, :] == high[:, None]) & is_last[:, None]
         inside = (low[:, None] <= figures[None, :]) & (figures[None, :] < high[:, None]) | at_end
         if self.table.outside != "stop":
-            inside |= (figures[None, :] < low.min()) & (low[:, None] == low.min())
-            inside |= (figures[None, :] > high.max()) & (high[:, None] == high.max())
+            inside |= (figures[None, :] < low[:, None]) & is_first[:, None]
+            inside |= (figures[None, :] > high[:, None]) & is_last[:, None]
         return inside
+
+    def _ends(self, low: Array, high: Array) -> tuple[Array, Array]:
+        """The rows that stand first and last among those of the same exact cells (the same layout, say)."""
+        exact = [self._cells(symbol) for symbol, way in self.table.by.items() if way == "exact"]
+        alike = np.ones((len(low), len(low)), dtype=bool)
+        for cells in exact:
+            alike &= cells[:, None] == cells[None, :]
+        return (low == np.where(alike, low[None, :], np.inf).min(axis=1),
+                high == np.where(alike, high[None, :], -np.inf).max(axis=1))
 
     def _pick(self, rows: Array, flat: Mapping[str, Array], interpolated: str) -> tuple[Array, Array]:
         column = self._cells(self.column)
@@ -101,7 +111,8 @@ class LookupOperation:
             found = rows.any(axis=0)
             values[found] = column[rows[:, found].argmax(axis=0)]
             return values, slopes
-        for pattern in np.unique(rows, axis=1).T:
+        same = bool((rows == rows[:, :1]).all())
+        for pattern in (rows[:, :1] if same else np.unique(rows, axis=1)).T:
             samples = (rows == pattern[:, None]).all(axis=0)
             if pattern.any():
                 values[samples], slopes[samples] = self._between(
@@ -112,6 +123,8 @@ class LookupOperation:
     def _between(self, at: Array, figures: Array, where: Array, symbol: str) -> tuple[Array, Array]:
         logarithmic = self.table.by[symbol] == "log-log"
         x, y, place = (np.log(at), np.log(figures), np.log(where)) if logarithmic else (at, figures, where)
+        if len(x) == 1:
+            x, y = np.array([x[0], np.nextafter(x[0], np.inf)]), np.array([y[0], y[0]])
         upper = np.clip(np.searchsorted(x, place, side="right"), 1, len(x) - 1)
         gradient = (y[upper] - y[upper - 1]) / (x[upper] - x[upper - 1])
         held = np.clip(place, x[0], x[-1])
@@ -134,9 +147,13 @@ class SolveOperation:
 
     @property
     def residual(self) -> Node:
+        """Left side less right side; kept with the equation, so that it is compiled once."""
         equation = self.line.equation.tree
         assert isinstance(equation, Compare)
-        return Binary("-", equation.first, equation.rest[0][1])
+        found = equation.memory.get(SolveOperation)
+        if found is None:
+            found = equation.memory[SolveOperation] = Binary("-", equation.first, equation.rest[0][1])
+        return found
 
     def value(self, arguments: Mapping[str, Array]) -> Array:
         shape = np.broadcast_shapes(*(np.shape(arguments[symbol]) for symbol in self.symbols))

@@ -8,10 +8,11 @@ from __future__ import annotations
 
 import hashlib
 import json
+from collections.abc import Mapping
 from dataclasses import dataclass
 
 from calcbook.chain.outcome import CaseOutcome, Solved, StepRow
-from calcbook.record.numbers import in_report_unit, unit_text, value_text
+from calcbook.record.numbers import in_report_unit, report_unit, unit_text, value_text
 
 MARK = b"calcbook-digest-1\0"
 RESULT_DIGITS = 5
@@ -39,16 +40,27 @@ def digest_of(solved: Solved) -> Digest:
 
 
 def _hash(content: object) -> str:
-    text = json.dumps(content, ensure_ascii=False, sort_keys=True, separators=(",", ":"), default=_refused)
+    _refuse_numbers(content)
+    text = json.dumps(content, ensure_ascii=False, sort_keys=True, separators=(",", ":"))
     return hashlib.sha256(MARK + text.encode("utf-8", "surrogatepass")).hexdigest()
 
 
-def _refused(content: object) -> object:
-    raise TypeError(f"{type(content).__name__} has no place in a digest")
+def _refuse_numbers(content: object) -> None:
+    """A digest binds texts: a float would bind bits that nobody sees. Raises ``TypeError``."""
+    if isinstance(content, Mapping):
+        for name, value in content.items():
+            _refuse_numbers(name)
+            _refuse_numbers(value)
+    elif isinstance(content, list):
+        for value in content:
+            _refuse_numbers(value)
+    elif content is not None and not isinstance(content, str):
+        raise TypeError(f"{type(content).__name__} has no place in a digest")
 
 
 def displayed(solved: Solved) -> dict[str, list[str]]:
     """Every displayed figure by stable id, as text and unit; states of checks and criteria as words."""
+    report = solved.chain.calculation.report
     shown: dict[str, list[str]] = {}
     for case in solved.cases:
         prefix = f"case {case.name} / " if case.name else ""
@@ -57,8 +69,8 @@ def displayed(solved: Solved) -> dict[str, list[str]]:
             for condition, value in (("clean", row.clean), ("service", row.service)):
                 shown[f"{prefix}step {row.step.id} / {condition}"] = [value_text(value, row.step.kind), unit]
         for name, result in case.results.items():
-            text = in_report_unit(result.value, result.kind, solved.chain.calculation.report, RESULT_DIGITS)
-            shown[f"{prefix}result {name}"] = [text, ""]
+            text = in_report_unit(result.value, result.kind, report, RESULT_DIGITS)
+            shown[f"{prefix}result {name}"] = [text, unit_text(report_unit(result.kind, report))]
         for check in case.checks:
             shown[f"{prefix}check {check.id} / {check.condition}"] = [
                 f"{check.figure}; {check.limit}; {check.state}",

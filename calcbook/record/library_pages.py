@@ -5,7 +5,18 @@ from __future__ import annotations
 from calcbook.fault_codes import CODES
 from calcbook.formulas import number_text, write
 from calcbook.library import Library
-from calcbook.library.cards import Assignment, Limit, Line, Material, Method, Need, Situation, Solve, Source, Table
+from calcbook.library.cards import (
+    Assignment,
+    Limit,
+    Line,
+    Material,
+    Method,
+    Need,
+    Situation,
+    Solve,
+    Source,
+    Table,
+)
 from calcbook.properties import fluid_names, mixture_names
 from calcbook.quantities import unit_display
 from calcbook.record.blocks import Block, Bullets, Code, Heading, Paragraph

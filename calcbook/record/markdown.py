@@ -14,7 +14,7 @@ from calcbook.record.blocks import Block, Bullets, Code, Heading, Paragraph, Quo
 
 _LINE_ENDS = re.compile(r"\r\n|[\n\r\t\v\f\x1c\x1d\x1e\x85\u2028\u2029]")
 _HIDDEN = frozenset(("Cc", "Cf", "Cs"))
-_ALWAYS = frozenset("\\`*[~|")
+_MARKS = re.compile(r"[\\`*\[~|#<&_]")
 _LEADING = frozenset("#>+-=")
 _LEADING_NUMBER = re.compile(r"(\d{1,9})([.)])(?=\s|$)")
 
@@ -80,9 +80,7 @@ def _characters(text: str) -> str:
 def escaped(text: str) -> str:
     """A text for a cell or a heading: a Markdown reader reads back that text and nothing else."""
     line = visible(text)
-    if line.isalnum():
-        return line
-    return "".join(_escaped_character(line, place) for place in range(len(line)))
+    return _MARKS.sub(lambda mark: _escaped_mark(line, mark.start()), line)
 
 
 def escaped_line(text: str) -> str:
@@ -94,19 +92,17 @@ def escaped_line(text: str) -> str:
     return f"\\{line}" if line[:1] in _LEADING else line
 
 
-def _escaped_character(line: str, place: int) -> str:
-    character = line[place]
+def _escaped_mark(line: str, place: int) -> str:
+    """A sign that may mean something in Markdown, with a backslash where it does."""
+    mark = line[place]
     following = line[place + 1 : place + 2]
-    if character.isalnum() or character == " ":
-        return character
-    needed = (
-        character in _ALWAYS
-        or (character == "#" and place == len(line) - 1)
-        or (character == "<" and not _opens_nothing(following))
-        or (character == "&" and (following == "#" or following.isalnum()))
-        or (character == "_" and not _inside_word(line, place))
+    harmless = (
+        (mark == "#" and place < len(line) - 1)
+        or (mark == "<" and _opens_nothing(following))
+        or (mark == "&" and not (following == "#" or following.isalnum()))
+        or (mark == "_" and _inside_word(line, place))
     )
-    return "\\" + character if needed else character
+    return mark if harmless else "\\" + mark
 
 
 def _opens_nothing(following: str) -> bool:

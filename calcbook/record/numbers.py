@@ -8,7 +8,7 @@ from decimal import ROUND_HALF_EVEN, Decimal
 import numpy as np
 
 from calcbook.calcfile.calculation import Report
-from calcbook.formulas import number_text
+from calcbook.formulas import number_text, parse_number
 from calcbook.quantities import QuantityFault, QuantityKind, display_unit, in_unit, unit_display
 
 NOT_USED = "not used"
@@ -108,8 +108,8 @@ def apart(value: float, limit: float, unit: str, point: bool, digits: int) -> tu
     if not (math.isfinite(value) and math.isfinite(limit)):
         return number(value, digits), number(limit, digits)
     one, two = in_unit(value, unit, point=point), in_unit(limit, unit, point=point)
-    for more in range(digits, MOST_DIGITS + 1):
+    for more in range(digits, MOST_DIGITS):
         first, second = number_text(one, more), number_text(two, more)
-        if first != second or value == limit:
+        if value == limit or parse_number(first) != parse_number(second):
             return first, second
-    return first, second
+    return number_text(one, MOST_DIGITS), number_text(two, MOST_DIGITS)

@@ -33,6 +33,7 @@ from calcbook.record.numbers import NOT_USED, PLAIN_DIGITS, celsius, number, pla
 Values = Mapping[str, Any]
 PASCALS_OF_BAR = 1e5
 LISTED_DIGITS = 7
+NO_DEPOSIT = "no deposit"
 
 
 @dataclass(frozen=True, slots=True)
@@ -67,6 +68,11 @@ class StepTexts:
         self.steps = {row.step.id: row.step for term in case.chains for row in term.rows}
         self.steps |= {row.step.id: row.step for row in case.circuit}
         self.closing = _closing_relations(chain)
+        self.deposits = frozenset(
+            element.resistance
+            for element in chain.elements
+            if isinstance(element, Layer) and element.kind == "fouling"
+        )
         self.streams = {
             branch.name: branch.stream for group in (chain.inner, chain.outer) for branch in group.branches
         }
@@ -165,6 +171,8 @@ class StepTexts:
 
     def _values(self, step: ChainStep, condition: str, value: float | bool) -> str:
         solution = self.case.solutions[condition]
+        if condition == CLEAN and step.id in self.deposits:
+            return NO_DEPOSIT
         if math.isnan(plain(value)) or any(bound not in solution.values for bound in step.inputs.values()):
             return NOT_USED
         arguments = {local: solution.values[bound] for local, bound in step.inputs.items()}
@@ -256,13 +264,23 @@ class StepTexts:
         notes = []
         for local, bound in inputs.items():
             symbol = self._symbol(bound)
-            if symbol and "." not in local:
+            if bound in self.chain.constants:
+                notes += self._constant_note(local, bound)
+            elif symbol and "." not in local:
                 origin = self.steps[bound].basis if bound in self.steps else ""
                 words = f" of {origin}" if origin in self.methods and origin != method else ""
                 if words or symbol != local:
                     given = "the given " if bound in self.chain.inputs and symbol in (own, *inputs) else ""
                     notes.append(f"{written_name(local)} is {given}{written_name(symbol)}{words}")
         return notes + self._literals(inputs)
+
+    def _constant_note(self, local: str, bound: str) -> list[str]:
+        """The constant of a card that stands for another symbol of a card used by it."""
+        _, _, place = bound.partition("/")
+        card, _, symbol = place.rpartition("/")
+        if card not in self.methods or symbol == local:
+            return []
+        return [f"{written_name(local)} is {written_name(symbol)} of {card}"]
 
 
 def _celsius_note(kind: QuantityKind | None, clean: float | bool, service: float | bool) -> str:

@@ -69,7 +69,7 @@ def content_of(solved: Solved) -> Content:
         {**_parts(calculation.meaning, ""), **_parts(calculation.settings.plain or {}, "book / ")},
         {name: _mark(text) for name, text in solved.cards.items()},
         _grouped(shown_results),
-        {name: " ".join(entry).strip() for name in HEADLINES if (entry := shown_results.get(f"result {name}"))},
+        {name: entry[0] for name in HEADLINES if (entry := shown_results.get(f"result {name}"))},
     )
 
 
@@ -104,9 +104,7 @@ def _grouped(results: Mapping[str, list[str]]) -> dict[str, str]:
 
 
 def _group(name: str) -> str:
-    case, bar, rest = name.rpartition(" / ") if name.startswith("case ") else ("", "", name)
-    if bar:
-        case, _, rest = name.partition(" / ")
+    case, bar, rest = name.partition(" / ") if name.startswith("case ") else ("", "", name)
     kind, _, owner = rest.partition(" ")
     if kind == "result":
         group = f"{kind} {owner}"

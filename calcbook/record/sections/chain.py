@@ -23,7 +23,7 @@ from calcbook.record.numbers import (
     with_unit,
 )
 from calcbook.record.page import Page
-from calcbook.record.steps import ChainLine, StepTexts
+from calcbook.record.steps import NO_DEPOSIT, ChainLine, StepTexts
 
 COLUMNS = ("Quantity", "Relation", "Values put in", "Clean", "Service", "Unit", "Basis")
 READING = (
@@ -187,11 +187,11 @@ def _chain_table(lines: list[ChainLine]) -> list[Block]:
 def _clean(line: ChainLine) -> str:
     """A row's clean value with the clean values put in."""
     result = with_unit(line.clean, line.unit)
-    return (
-        f"{line.quantity} = {result}"
-        if line.clean_values == line.clean
-        else (f"{line.quantity} = {line.clean_values} = {result}")
-    )
+    if line.clean_values == NO_DEPOSIT:
+        return f"{line.quantity} = {result}: {NO_DEPOSIT}"
+    if line.clean_values == line.clean:
+        return f"{line.quantity} = {result}"
+    return f"{line.quantity} = {line.clean_values} = {result}"
 
 
 def _card_table(card: str, table: CardTable) -> list[Block]:

@@ -174,7 +174,7 @@ QUESTIONS: tuple[tuple[str, Answer | None], ...] = (
         _temperatures,
     ),
     ("Which assumptions are not verified?", _unverified),
-    ("Is each assumption reasonable, and on the safe side in the direction that matters here?", None),
+    ("Is each assumption reasonable, and does it err in the direction that matters here?", None),
     ("Does each situation and method fit the real geometry, fluid and boundary condition?", None),
     ("Are the figures inside the range of each method, in every case and condition?", _ranges),
     ("Does any fluid change its phase at the wall?", _wall_phase),

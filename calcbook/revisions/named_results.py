@@ -1,0 +1,95 @@
+"""Results by name on arrays: what a record names, for every sample of a solution."""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Mapping
+
+import numpy as np
+
+from calcbook.chain.solve import Solution
+from calcbook.chain.types import CLEAN, CONDITIONS, SERVICE, Chain, Group
+
+Array = np.ndarray
+RATIOS = ("cleanliness", "excess_surface")
+_WITH_CONDITION = re.compile(r"(U|UA|heat_flux|heat_flow)_(clean|service)(?: on (.+))?")
+_OF_TERM = re.compile(r"(T|h|R) (.+) (clean|service)")
+_OF_STREAM = re.compile(r"(speed|Re) (.+)")
+_IN_TABLE = {"U": "U", "UA": "UA", "heat_flux": "heat flux", "heat_flow": "heat flow"}
+
+
+def conditions_of(name: str) -> tuple[str, ...]:
+    """The conditions that a result is made from."""
+    if name in RATIOS:
+        return CONDITIONS
+    found = _WITH_CONDITION.fullmatch(name) or _OF_TERM.fullmatch(name)
+    return (CLEAN,) if found is not None and CLEAN in found.groups() else (SERVICE,)
+
+
+def is_coefficient(name: str) -> bool:
+    """Whether a result is an overall coefficient, so that its reciprocal is a resistance."""
+    found = _WITH_CONDITION.fullmatch(name)
+    return found is not None and found[1] == "U"
+
+
+def result_values(chain: Chain, solutions: Mapping[str, Solution], name: str) -> Array | None:
+    """A result for every sample; None where the chain has no such result."""
+    if name in RATIOS:
+        clean, service = (_value(solutions[condition], chain.results["U"]) for condition in CONDITIONS)
+        return service / clean if name == "cleanliness" else clean / service - 1.0
+    found = _WITH_CONDITION.fullmatch(name)
+    if found is not None:
+        key = _IN_TABLE[found[1]] + (f" on {found[3]}" if found[3] else "")
+        return _value(solutions[found[2]], chain.results[key]) if key in chain.results else None
+    found = _OF_TERM.fullmatch(name)
+    if found is not None and found[1] == "T":
+        return _interface(chain, solutions[found[3]], found[2])
+    if found is not None:
+        key = f"{found[1]} {found[2]}"
+        return _value(solutions[found[3]], chain.results[key]) if key in chain.results else None
+    return _of_stream(chain, solutions[SERVICE], name)
+
+
+def _value(solution: Solution, step: str) -> Array:
+    return np.asarray(solution.values[step], dtype=float)
+
+
+def _interface(chain: Chain, solution: Solution, name: str) -> Array | None:
+    """Temperature at a place between two terms, or of a wetted surface."""
+    if not chain.has_temperatures:
+        return None
+    if name == "inside surface":
+        return _value(solution, chain.inner.surface_temperature)
+    if name == "outside surface":
+        return _value(solution, chain.outer.surface_temperature)
+    temperature = _value(solution, chain.inner.bulk)
+    for element, following in zip(chain.elements, chain.elements[1:], strict=False):
+        if isinstance(element, Group):
+            temperature = _value(solution, element.surface_temperature)
+        elif isinstance(following, Group):
+            temperature = _value(solution, following.surface_temperature)
+        elif element.second_temperature:
+            temperature = _value(solution, element.second_temperature)
+        else:
+            area = _value(solution, chain.surfaces[element.surface].area)
+            temperature = temperature - _value(solution, "solution/Q") * _value(solution, element.resistance) / area
+        if name == f"{element.name} to {following.name}":
+            return temperature
+    return None
+
+
+def _of_stream(chain: Chain, solution: Solution, name: str) -> Array | None:
+    found = _OF_STREAM.fullmatch(name)
+    if found is None:
+        return None
+    for group in (chain.inner, chain.outer):
+        for branch in group.branches:
+            if branch.stream != found[2]:
+                continue
+            state = chain.streams[branch.stream]
+            step = f"{branch.name}/Re" if found[1] == "Re" else f"{branch.name}/speed"
+            if found[1] == "speed" and state.flow_kind == "speed":
+                step = state.flow
+            if step in solution.values:
+                return _value(solution, step)
+    return None
