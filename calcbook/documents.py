@@ -115,15 +115,22 @@ def read_text(text: str, name: str, collector: Collector | None = None) -> Docum
         raise _single("file-empty", whole, "the file is empty", expected="one YAML mapping")
     nodes, faults = _composed(name, lines)
     if not nodes:
-        raise Faults([*faults, Fault("file-empty", whole, "the file holds only comments", "", "one YAML mapping")])
+        raise Faults(
+            [*faults, Fault("file-empty", whole, "the file holds only comments", "", "one YAML mapping")]
+        )
     builder = _Builder(name, lines)
     builder.collector.take(faults)
     if len(nodes) > 1:
-        dashes = next(number for number in range(nodes[1].start_mark.line, -1, -1)
-                      if lines[number].startswith("---"))
+        dashes = next(
+            number for number in range(nodes[1].start_mark.line, -1, -1) if lines[number].startswith("---")
+        )
         place = Place(name, dashes + 1, 1, 4, lines[dashes])
-        builder.collector.add("yaml-several-documents", place, "the file holds more than one document",
-                              expected="one document, without a line of three dashes in it")
+        builder.collector.add(
+            "yaml-several-documents",
+            place,
+            "the file holds more than one document",
+            expected="one document, without a line of three dashes in it",
+        )
         builder.collector.stop_if_any()
     root = builder.build(nodes[0], 0)
     if collector is None:
@@ -147,9 +154,13 @@ def _refuse_characters(text: str, name: str, lines: list[str]) -> None:
     line = text.count("\n", 0, forbidden.start())
     column = forbidden.start() - text.rfind("\n", 0, forbidden.start())
     character = f"U+{ord(forbidden.group()):04X}"
-    raise _single("file-not-text", Place(name, line + 1, column, column + 1, lines[line]),
-                  f"the character {character} cannot be seen and stands in no text",
-                  found=character, expected="plain UTF-8 text; remove the character")
+    raise _single(
+        "file-not-text",
+        Place(name, line + 1, column, column + 1, lines[line]),
+        f"the character {character} cannot be seen and stands in no text",
+        found=character,
+        expected="plain UTF-8 text; remove the character",
+    )
 
 
 def _compose(text: str) -> list[yaml.Node]:
@@ -157,7 +168,9 @@ def _compose(text: str) -> list[yaml.Node]:
     nodes: list[yaml.Node] = []
     try:
         while loader.check_node() and len(nodes) < 2:
-            nodes.append(loader.get_node())
+            node = loader.get_node()
+            assert node is not None  # check_node has seen one
+            nodes.append(node)
     finally:
         loader.dispose()
     return nodes
@@ -209,25 +222,49 @@ def _text_of(path: Path, called: str) -> str:
     except FileNotFoundError:
         beside = [item.name for item in path.parent.glob("*.yaml")] if path.parent.is_dir() else []
         near = nearest_names(path.name, sorted(beside))
-        raise _single("file-not-found", place, "there is no such file", expected="an existing YAML file",
-                      nearest=near) from None
+        raise _single(
+            "file-not-found", place, "there is no such file", expected="an existing YAML file", nearest=near
+        ) from None
     except OSError as error:
-        raise _single("file-unreadable", place, "the file cannot be read",
-                      found=error.strerror or "", expected="a readable YAML file") from None
+        raise _single(
+            "file-unreadable",
+            place,
+            "the file cannot be read",
+            found=error.strerror or "",
+            expected="a readable YAML file",
+        ) from None
     if len(data) > MAXIMUM_BYTES:
-        raise _single("file-too-large", place, "the file is too large for a calculation",
-                      found="more than 2 MB", expected="at most 2 MB")
+        raise _single(
+            "file-too-large",
+            place,
+            "the file is too large for a calculation",
+            found="more than 2 MB",
+            expected="at most 2 MB",
+        )
     try:
         return data.decode("utf-8")
     except UnicodeDecodeError as error:
         line = data.count(b"\n", 0, error.start) + 1
         kind = "binary data" if b"\x00" in data[:4096] else f"byte 0x{data[error.start]:02X}"
-        raise _single("file-not-utf8", Place(called, line), "the file is not UTF-8 text",
-                      found=kind, expected="UTF-8 text; save the file with that encoding") from None
+        before = data[data.rfind(b"\n", 0, error.start) + 1 : error.start].decode("utf-8", "replace")
+        raise _single(
+            "file-not-utf8",
+            Place(called, line, len(before) + 1),
+            "the file is not UTF-8 text",
+            found=kind,
+            expected="UTF-8 text; save the file with that encoding",
+        ) from None
 
 
-def _single(code: str, place: Place, message: str, *, found: str = "", expected: str = "",
-            nearest: tuple[str, ...] = ()) -> Faults:
+def _single(
+    code: str,
+    place: Place,
+    message: str,
+    *,
+    found: str = "",
+    expected: str = "",
+    nearest: tuple[str, ...] = (),
+) -> Faults:
     return Faults([Fault(code, place, message, found, expected, nearest)])
 
 
@@ -244,21 +281,32 @@ class _Builder:
         """A node of our tree; a mapping or list in lines of its own stands at its ``key``."""
         place = _place(node, self.name, self.lines)
         if id(node) in self.seen:
-            self.collector.add("yaml-alias", self._alias(place), "a YAML alias repeats an earlier part",
-                               found=f"what stands on line {place.line}", expected="the value itself, written out")
+            self.collector.add(
+                "yaml-alias",
+                self._alias(place),
+                "a YAML alias repeats an earlier part",
+                found=f"what stands on line {place.line}",
+                expected="the value itself, written out",
+            )
             return Scalar("alias", place, "quoted")
         self.seen.add(id(node))
         self._look_for_mark(place)
         if depth > MAXIMUM_DEPTH:
-            self.collector.add("yaml-too-deep", place, "the file is nested too deeply",
-                               expected=f"at most {MAXIMUM_DEPTH} levels")
+            self.collector.add(
+                "yaml-too-deep",
+                place,
+                "the file is nested too deeply",
+                expected=f"at most {MAXIMUM_DEPTH} levels",
+            )
             return Scalar("too deep", place, "quoted")
         if isinstance(node, yaml.ScalarNode):
             return self._scalar(node, place)
+        assert isinstance(node, yaml.CollectionNode)
         if key is not None and not node.flow_style:
             place = key
         if isinstance(node, yaml.SequenceNode):
             return Sequence(tuple(self.build(item, depth + 1) for item in node.value), place)
+        assert isinstance(node, yaml.MappingNode)
         return self._mapping(node, place, depth, key)
 
     def _alias(self, anchored: Place) -> Place:
@@ -278,9 +326,13 @@ class _Builder:
             end = re.search(r"[\s,}\]]|$", place.excerpt[place.column - 1 :])
             assert end is not None
             where = place.part(0, end.start())
-            self.collector.add("yaml-alias", where, f"`{first}` starts a YAML {kind}, not a text",
-                               found=shown(place.excerpt[place.column - 1 :]),
-                               expected="the value in quotes, or without the mark")
+            self.collector.add(
+                "yaml-alias",
+                where,
+                f"`{first}` starts a YAML {kind}, not a text",
+                found=shown(place.excerpt[place.column - 1 :]),
+                expected="the value in quotes, or without the mark",
+            )
 
     def _scalar(self, node: yaml.ScalarNode, place: Place) -> Scalar:
         style = {"'": "quoted", '"': "quoted", "|": "block", ">": "block"}.get(node.style or "", "plain")
@@ -289,8 +341,12 @@ class _Builder:
             return Scalar(cut.excerpt[cut.column - 1 :].strip(), cut)
         hidden = _FORBIDDEN.search(node.value) if style == "quoted" else None
         if hidden is not None:
-            self.collector.add("file-not-text", place, f"the text holds the character U+{ord(hidden.group()):04X},"
-                               " which cannot be seen", expected="plain text without such escapes")
+            self.collector.add(
+                "file-not-text",
+                place,
+                f"the text holds the character U+{ord(hidden.group()):04X}, which cannot be seen",
+                expected="plain text without such escapes",
+            )
             return Scalar(_FORBIDDEN.sub("_", node.value), place, style)
         return Scalar(node.value, place, style)
 
@@ -304,9 +360,13 @@ class _Builder:
             return None
         column = node.end_mark.column + len(cut.group(1)) + 1
         where = Place(self.name, node.end_mark.line + 1, column, len(line) + 1, line)
-        self.collector.add("comment-cuts-text", where, "` #` starts a comment and cuts the text short",
-                           found=shown(line[column - 1 :]),
-                           expected="the whole text in quotes, or two blanks before and one after the #")
+        self.collector.add(
+            "comment-cuts-text",
+            where,
+            "` #` starts a comment and cuts the text short",
+            found=shown(line[column - 1 :]),
+            expected="the whole text in quotes, or two blanks before and one after the #",
+        )
         return where
 
     def _mapping(self, node: yaml.MappingNode, place: Place, depth: int, own_key: Place | None) -> Mapping:
@@ -315,14 +375,23 @@ class _Builder:
         for key_node, value_node in node.value:
             key = self.build(key_node, depth + 1)
             if not isinstance(key, Scalar):
-                self.collector.add("key-not-text", key.place, "a key must be a text",
-                                   found="a list" if isinstance(key, Sequence) else "a mapping",
-                                   expected="a key such as `title`; a text that starts with { or [ in quotes")
+                self.collector.add(
+                    "key-not-text",
+                    key.place,
+                    "a key must be a text",
+                    found="a list" if isinstance(key, Sequence) else "a mapping",
+                    expected="a key such as `title`; a text that starts with { or [ in quotes",
+                )
                 continue
             value = self.build(value_node, depth + 1, key.place)
             if key.text in first_line:
-                self.collector.add("key-twice", key.place, f"the key `{shown(key.text)}` is written twice",
-                                   found=f"first on line {first_line[key.text]}", expected="each key once")
+                self.collector.add(
+                    "key-twice",
+                    key.place,
+                    f"the key `{shown(key.text)}` is written twice",
+                    found=f"first on line {first_line[key.text]}",
+                    expected="each key once",
+                )
                 continue
             first_line[key.text] = key.place.line
             entries.append((key, value))
@@ -344,93 +413,151 @@ def _place(node: yaml.Node, name: str, lines: list[str]) -> Place:
 _Suspect = tuple[Fault, list[str] | None]
 
 
+@dataclass(frozen=True, slots=True)
+class _Stop:
+    """Where the parser stopped: ``lines`` as typed, ``text`` with the faults before this one mended.
+
+    ``line`` and ``column`` count from 0, ``begun`` is the line of what the parser was reading.
+    """
+
+    name: str
+    lines: list[str]
+    text: list[str]
+    line: int
+    column: int
+    begun: int
+
+    def place(self, number: int, start: int, end: int) -> Place:
+        return Place(self.name, number + 1, start + 1, max(end, start + 1) + 1, self.lines[number])
+
+    def mended(self, number: int, start: int, end: int, new: str) -> list[str]:
+        line = self.text[number]
+        return [*self.text[:number], line[:start] + new + line[end:], *self.text[number + 1 :]]
+
+
 def _suspects(error: yaml.YAMLError, name: str, lines: list[str], text: list[str]) -> Iterator[_Suspect]:
     """What may be wrong, in our own words: a fault and the text mended, None where it cannot be mended.
 
-    ``lines`` are the lines as typed, ``text`` those lines with the faults before this one mended. The last
-    suspect cannot be mended.
+    The last suspect cannot be mended.
     """
     line, column = _mark(error)
     line = min(line, len(lines) - 1)
     context = getattr(error, "context_mark", None)
     begun = min(context.line, len(lines) - 1) if context is not None else line
-
-    def place(number: int, start: int, end: int) -> Place:
-        return Place(name, number + 1, start + 1, max(end, start + 1) + 1, lines[number])
-
-    def mended(number: int, start: int, new: str) -> list[str]:
-        return [*text[:number], text[number][:start] + new + text[number][start + 1 :], *text[number + 1 :]]
-
-    def quiet(number: int, start: int, end: int) -> list[str]:
-        """Without the `: ` from ``start`` on: one text gives one fault."""
-        rest = re.sub(r":(?= |$)", ";", text[number][start:end])
-        return [*text[:number], text[number][:start] + rest + text[number][end:], *text[number + 1 :]]
-
-    for number, start in _comments_in_braces(text, line):
-        yield (Fault("comment-cuts-text", place(number, start, len(lines[number])),
-                     "` #` starts a comment inside { } and cuts the text short",
-                     shown(lines[number][start:]), "the text in quotes"), mended(number, start, "_"))
-    for number in dict.fromkeys((line, begun)):
-        colon = re.search(r"^\s*(?:- )?[^\s#'\"{\[][^#'\"{\[]*?: +[^'\"{\[|>\s].*?(:)(?= |$)", text[number])
-        if colon:
-            yield (Fault("colon-in-text", place(number, colon.start(1), colon.end(1)),
-                         "`: ` inside a text starts a new key", "", "the whole text in quotes"),
-                   quiet(number, colon.start(1), len(text[number])))
-        for start, end in _colons_in_braces(text[number]):
-            yield (Fault("colon-in-text", place(number, start, start + 1), "`: ` inside a text starts a new key", "",
-                         "the whole text in quotes"), quiet(number, start, end))
-    bracket = re.search(r"[:,{] *[^\s,:{}\[\]'\"][^,:{}\[\]]*(\[[^\[\]{}]*\]|\{[^\[\]{}]*\})", _unquoted(text[line]))
-    if bracket:
-        start, end = bracket.span(1)
-        quiet = f"({text[line][start + 1 : end - 1].replace(',', ';').replace(':', ';')})"
-        yield (Fault("yaml-syntax", place(line, start, end), "brackets stand inside a text", "",
-                     "the whole text in quotes"),
-               [*text[:line], text[line][:start] + quiet + text[line][end:], *text[line + 1 :]])
-    first = text[line][column : column + 1]
-    if "\t" in text[line][: len(text[line]) - len(text[line].lstrip())]:
-        start = text[line].index("\t")
-        yield Fault("yaml-tab", place(line, start, start + 1), "a tab is used to indent", "", "blanks"), None
-    if first == "*":
-        yield (Fault("yaml-alias", place(line, column, column + 1), "`*` starts a YAML alias, not a text", "",
-                     "the value in quotes"), mended(line, column, "_"))
-    if first and first in "@`%":
-        yield (Fault("yaml-syntax", place(line, column, column + 1), f"a text cannot start with `{first}`", "",
-                     "the whole text in quotes"), mended(line, column, "_"))
-    opened = _unclosed(text, line)
-    if opened is not None:
-        bracket = lines[opened[0]][opened[1]]
-        fault = Fault("yaml-syntax", place(opened[0], opened[1], opened[1] + 1),
-                      f"`{bracket}` is not closed, or a `: ` or comma inside it is not quoted", "",
-                      "`}` or `]` at the end, texts with brackets, `: ` or a comma in quotes")
-        end = len(text[opened[0]])
-        yield fault, mended(opened[0], end, "}" if bracket == "{" else "]")
-        yield fault, None
-    yield _unmended(error, place, lines, line, column, begun), None
+    stop = _Stop(name, lines, text, line, column, begun)
+    yield from _cut_texts(stop)
+    yield from _colons(stop)
+    yield from _brackets(stop)
+    yield from _signs(stop)
+    yield from _open_brackets(stop)
+    yield _unmended(stop, str(getattr(error, "problem", ""))), None
 
 
-def _unmended(error: yaml.YAMLError, place: Callable[[int, int, int], Place], lines: list[str], line: int,
-              column: int, begun: int) -> Fault:
+def _cut_texts(stop: _Stop) -> Iterator[_Suspect]:
+    message = "` #` starts a comment inside { } and cuts the text short"
+    for number, start in _comments_in_braces(stop.text, stop.line):
+        line = stop.lines[number]
+        place = stop.place(number, start, len(line))
+        fault = Fault("comment-cuts-text", place, message, shown(line[start:]), "the text in quotes")
+        yield fault, stop.mended(number, start, start + 1, "_")
+
+
+def _colons(stop: _Stop) -> Iterator[_Suspect]:
+    for number in dict.fromkeys((stop.line, stop.begun)):
+        line = stop.text[number]
+        block = re.search(r"^\s*(?:- )?[^\s#'\"{\[][^#'\"{\[]*?: +[^'\"{\[|>\s].*?(:)(?= |$)", line)
+        found = [(block.start(1), len(line))] if block else []
+        for start, end in (*found, *_colons_in_braces(line)):
+            place = stop.place(number, start, start + 1)
+            message = "`: ` inside a text starts a new key"
+            # one text gives one fault, however many colons it has
+            rest = re.sub(r":(?= |$)", ";", line[start:end])
+            fault = Fault("colon-in-text", place, message, "", "the whole text in quotes")
+            yield fault, stop.mended(number, start, end, rest)
+
+
+def _brackets(stop: _Stop) -> Iterator[_Suspect]:
+    line = stop.text[stop.line]
+    inside = re.search(r"[:,{] *[^\s,:{}\[\]'\"][^,:{}\[\]]*(\[[^\[\]{}]*\]|\{[^\[\]{}]*\})", _unquoted(line))
+    if inside is not None:
+        start, end = inside.span(1)
+        plain = re.sub("[,:]", ";", line[start + 1 : end - 1])
+        place = stop.place(stop.line, start, end)
+        fault = Fault("yaml-syntax", place, "brackets stand inside a text", "", "the whole text in quotes")
+        yield fault, stop.mended(stop.line, start, end, f"({plain})")
+
+
+def _signs(stop: _Stop) -> Iterator[_Suspect]:
+    line, column = stop.text[stop.line], stop.column
+    indent = line[: len(line) - len(line.lstrip())]
+    if "\t" in indent:
+        start = indent.index("\t")
+        place = stop.place(stop.line, start, start + 1)
+        yield Fault("yaml-tab", place, "a tab is used to indent", "", "blanks"), None
+    sign = line[column : column + 1]
+    place = stop.place(stop.line, column, column + 1)
+    mended = stop.mended(stop.line, column, column + 1, "_")
+    if sign == "*":
+        yield (
+            Fault("yaml-alias", place, "`*` starts a YAML alias, not a text", "", "the value in quotes"),
+            mended,
+        )
+    elif sign and sign in "@`%":
+        message = f"a text cannot start with `{sign}`"
+        yield Fault("yaml-syntax", place, message, "", "the whole text in quotes"), mended
+
+
+def _open_brackets(stop: _Stop) -> Iterator[_Suspect]:
+    opened = _unclosed(stop.text, stop.line)
+    if opened is None:
+        return
+    number, start = opened
+    bracket, end = stop.text[number][start], len(stop.text[number])
+    fault = Fault(
+        "yaml-syntax",
+        stop.place(number, start, start + 1),
+        f"`{bracket}` is not closed, or a `: ` or comma inside it is not quoted",
+        "",
+        "`}` or `]` at the end, texts with brackets, `: ` or a comma in quotes",
+    )
+    yield fault, stop.mended(number, end, end, "}" if bracket == "{" else "]")
+    yield fault, None
+
+
+def _unmended(stop: _Stop, problem: str) -> Fault:
     """The fault of a text that cannot be read on."""
-    problem = str(getattr(error, "problem", ""))
-    source = lines[begun]
-    indent = len(source) - len(source.lstrip())
+    source, line = stop.lines[stop.begun], stop.lines[stop.line]
     if "expected ':'" in problem and ":" not in source:
-        return Fault("yaml-syntax", place(begun, indent, len(source)), "the line has no `: ` between key and value",
-                     shown(source.strip()), "a line `key: value`")
-    quote = source.lstrip()[:1] if source.lstrip()[:1] in ("'", '"') else next(
-        (mark for mark in ('"', "'") if source.count(mark) % 2), "")
+        place = stop.place(stop.begun, len(source) - len(source.lstrip()), len(source))
+        message = "the line has no `: ` between key and value"
+        return Fault("yaml-syntax", place, message, shown(source.strip()), "a line `key: value`")
+    quote = next((mark for mark in ('"', "'") if source.count(mark) % 2), "")
     if "end of stream" in problem and quote:
-        start = source.rindex(quote) if source.count(quote) % 2 else source.index(quote)
-        return Fault("yaml-syntax", place(begun, start, start + 1), f"the quote `{quote}` is not closed", "",
-                     "the same quote at the end of the text; a quote inside the text written twice")
-    spaces = len(lines[line]) - len(lines[line].lstrip())
-    deeper = "mapping values" in problem and ":" not in lines[line][:column]
-    if (deeper or column == spaces and "expected" in problem) and lines[line].strip():
-        return Fault("yaml-syntax", place(line, spaces, len(lines[line])),
-                     "the line does not fit the lines above: its indent, or what stands before it", "",
-                     "`key: value` lines of one mapping at one indent, in blanks")
-    return Fault("yaml-syntax", place(line, column, column + 1), "the text is not YAML from here on",
-                 shown(lines[line].strip()), "`key: value` lines, indented by blanks alike")
+        start = source.rindex(quote)
+        return Fault(
+            "yaml-syntax",
+            stop.place(stop.begun, start, start + 1),
+            f"the quote `{quote}` is not closed",
+            "",
+            "the same quote at the end of the text; a quote inside the text written twice",
+        )
+    spaces = len(line) - len(line.lstrip())
+    deeper = "mapping values" in problem and ":" not in line[: stop.column]
+    if line.strip() and (deeper or (stop.column == spaces and "expected" in problem)):
+        return Fault(
+            "yaml-syntax",
+            stop.place(stop.line, spaces, len(line)),
+            "the line does not fit the lines above: its indent, or what stands before it",
+            "",
+            "`key: value` lines of one mapping at one indent, in blanks",
+        )
+    return Fault(
+        "yaml-syntax",
+        stop.place(stop.line, stop.column, stop.column + 1),
+        "the text is not YAML from here on",
+        shown(line.strip()),
+        "`key: value` lines, indented by blanks alike",
+    )
 
 
 def _unquoted(line: str) -> str:
@@ -562,9 +689,13 @@ def read_mapping(node: Node | None, description: Description, collector: Collect
         _report_missing(fields, description, collector)
         return fields
     if not isinstance(node, Mapping):
-        collector.add("mapping-expected", node.place, f"{description.name} must be a mapping",
-                      found="a list" if isinstance(node, Sequence) else shown(node.text),
-                      expected=_key_list(description))
+        collector.add(
+            "mapping-expected",
+            node.place,
+            f"{description.name} must be a mapping",
+            found="a list" if isinstance(node, Sequence) else shown(node.text),
+            expected=_key_list(description),
+        )
         return Fields(node.place)
     fields = Fields(node.place)
     for key, value in node.entries:
@@ -572,33 +703,57 @@ def read_mapping(node: Node | None, description: Description, collector: Collect
         if known is None:
             _report_unknown(node, key, value, description, collector)
         elif known.later:
-            collector.add("key-not-yet-available", key.place, f"`{key.text}` is not yet available in this version",
-                          expected="a calculation without it")
+            collector.add(
+                "key-not-yet-available",
+                key.place,
+                f"`{key.text}` is not yet available in this version",
+                expected="a calculation without it",
+            )
         elif _shape_holds(key, value, known, collector):
             fields.nodes[key.text] = value
             fields.key_places[key.text] = key.place
     # a mistyped key is told as such, not as missing too
     written = {key.text for key, _ in node.entries}
-    meant = {name for key in written - set(description.names()) for name in nearest_names(key, description.names(), 1)}
+    meant = {
+        name
+        for key in written - set(description.names())
+        for name in nearest_names(key, description.names(), 1)
+    }
     _report_missing(fields, description, collector, written | meant)
     return fields
 
 
-def _report_unknown(node: Mapping, key: Scalar, value: Node, description: Description, collector: Collector) -> None:
+def _report_unknown(
+    node: Mapping, key: Scalar, value: Node, description: Description, collector: Collector
+) -> None:
     if node.in_braces and isinstance(value, Scalar) and value.is_empty:
         before = _before(node, key)
         if before is not None and re.fullmatch(r"[-+]?\d+", before.text) and key.text[:1].isdigit():
             written = f"{before.text},{key.text}"
             place = before.place.part(0, key.place.end_column - before.place.column)
-            collector.add("number-decimal-comma", place, f"`{shown(written)}` has a decimal comma",
-                          found=shown(written), expected=f"a decimal point: {shown(written.replace(',', '.', 1))}")
+            collector.add(
+                "number-decimal-comma",
+                place,
+                f"`{shown(written)}` has a decimal comma",
+                found=shown(written),
+                expected=f"a decimal point: {shown(written.replace(',', '.', 1))}",
+            )
             return
-        collector.add("comma-starts-key", key.place, f"the comma starts a new key `{shown(key.text)}`",
-                      expected="the text before it in quotes, if the comma belongs to the text")
+        collector.add(
+            "comma-starts-key",
+            key.place,
+            f"the comma starts a new key `{shown(key.text)}`",
+            expected="the text before it in quotes, if the comma belongs to the text",
+        )
         return
-    collector.add("key-unknown", key.place, f"{description.name} has no key `{shown(key.text)}`",
-                  found=shown(key.text), expected=_key_list(description),
-                  nearest=nearest_names(key.text, description.names()))
+    collector.add(
+        "key-unknown",
+        key.place,
+        f"{description.name} has no key `{shown(key.text)}`",
+        found=shown(key.text),
+        expected=_key_list(description),
+        nearest=nearest_names(key.text, description.names()),
+    )
 
 
 def _before(node: Mapping, key: Scalar) -> Scalar | None:
@@ -609,12 +764,17 @@ def _before(node: Mapping, key: Scalar) -> Scalar | None:
     return None
 
 
-def _report_missing(fields: Fields, description: Description, collector: Collector,
-                    written: set[str] | None = None) -> None:
+def _report_missing(
+    fields: Fields, description: Description, collector: Collector, written: set[str] | None = None
+) -> None:
     for key in description.keys:
         if key.required and key.name not in fields and key.name not in (written or set()):
-            collector.add("key-missing", fields.place, f"{description.name} lacks the key `{key.name}`",
-                          expected=f"{key.name}: {key.meaning}")
+            collector.add(
+                "key-missing",
+                fields.place,
+                f"{description.name} lacks the key `{key.name}`",
+                expected=f"{key.name}: {key.meaning}",
+            )
 
 
 def _shape_holds(key: Scalar, value: Node, known: Key, collector: Collector) -> bool:
@@ -631,29 +791,52 @@ def _shape_holds(key: Scalar, value: Node, known: Key, collector: Collector) -> 
     if known.kind == "mapping":
         if isinstance(value, Mapping):
             return True
-        collector.add("mapping-expected", value.place, f"`{name}` must be a mapping",
-                      found="a list" if isinstance(value, Sequence) else shown(value.text),
-                      expected=_keys_of(known))
+        collector.add(
+            "mapping-expected",
+            value.place,
+            f"`{name}` must be a mapping",
+            found="a list" if isinstance(value, Sequence) else shown(value.text),
+            expected=_keys_of(known),
+        )
         return False
     if known.kind == "list":
         if isinstance(value, Sequence):
             return True
-        collector.add("list-expected", value.place, f"`{name}` must be a list",
-                      found="a mapping" if isinstance(value, Mapping) else shown(value.text),
-                      expected=f"lines that start with a hyphen: {known.meaning}")
+        collector.add(
+            "list-expected",
+            value.place,
+            f"`{name}` must be a list",
+            found="a mapping" if isinstance(value, Mapping) else shown(value.text),
+            expected=f"lines that start with a hyphen: {known.meaning}",
+        )
         return False
     if not isinstance(value, Scalar):
-        collector.add("value-not-text", value.place, f"`{name}` must be a single value",
-                      found="a mapping" if isinstance(value, Mapping) else "a list", expected=known.meaning)
+        collector.add(
+            "value-not-text",
+            value.place,
+            f"`{name}` must be a single value",
+            found="a mapping" if isinstance(value, Mapping) else "a list",
+            expected=known.meaning,
+        )
         return False
     if known.kind == "choice" and value.text not in known.choices:
-        collector.add("choice-unknown", value.place, f"`{name}` cannot be `{shown(value.text)}`",
-                      found=shown(value.text), expected=" | ".join(known.choices),
-                      nearest=nearest_names(value.text, known.choices))
+        collector.add(
+            "choice-unknown",
+            value.place,
+            f"`{name}` cannot be `{shown(value.text)}`",
+            found=shown(value.text),
+            expected=" | ".join(known.choices),
+            nearest=nearest_names(value.text, known.choices),
+        )
         return False
     if known.kind == "flag" and value.text not in ("yes", "no", "true", "false"):
-        collector.add("flag-unreadable", value.place, f"`{name}` is answered by yes or no",
-                      found=shown(value.text), expected="yes | no")
+        collector.add(
+            "flag-unreadable",
+            value.place,
+            f"`{name}` is answered by yes or no",
+            found=shown(value.text),
+            expected="yes | no",
+        )
         return False
     return True
 

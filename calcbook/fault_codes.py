@@ -163,4 +163,17 @@ CODES: dict[str, str] = {
     "issue-sign-off": "a sign-off that an issue needs is missing or void",
     "issue-open-item": "an open item that the book lets no issue have",
     "seal-unreadable": "the seal of an issued copy cannot be read",
+    # the comparison of two revisions, and recall
+    "side-unreadable": "a side of a comparison that is no file, no NUMBER@REVISION and no git:REVISION:path",
+    "issued-not-found": "a revision that is not issued in this output folder",
+    "nothing-issued": "a calculation without an issued revision to compare with: name the other side",
+    "results-unreadable": "a results file or seal that is not what calcbook wrote",
+    "git-not-available": "git cannot be started",
+    "git-revision-unknown": "a revision that git does not know here; a shallow clone must fetch it first",
+    "git-file-unknown": "a file that the git revision does not have",
+    "replacement-unfit": "a replacement value that fits nothing of what was recalled",
+    "link-source-unknown": "a calculation that a given is taken from cannot be found",
+    "link-revision-unknown": "a link is pinned to a revision that is not issued",
+    "link-result-unknown": "a link to a result that the source does not have",
+    "link-circular": "calculations take from each other in a circle",
 }

@@ -19,8 +19,15 @@ from calcbook.fault_codes import CODES
 EXCERPT_WIDTH = 110
 # A text that YAML takes for something else: other faults at the same place only follow from it.
 TRAPS = frozenset(
-    ("colon-in-text", "comma-starts-key", "comment-cuts-text", "key-twice", "number-decimal-comma", "yaml-alias",
-     "yaml-too-deep")
+    (
+        "colon-in-text",
+        "comma-starts-key",
+        "comment-cuts-text",
+        "key-twice",
+        "number-decimal-comma",
+        "yaml-alias",
+        "yaml-too-deep",
+    )
 )
 
 
@@ -75,7 +82,9 @@ class Faults(Exception):
     """Every fault of one stage, sorted by place, none twice."""
 
     def __init__(self, faults: Iterable[Fault]):
-        self.faults: tuple[Fault, ...] = _without_echoes(sorted(set(faults), key=lambda fault: fault.sort_key))
+        self.faults: tuple[Fault, ...] = _without_echoes(
+            sorted(set(faults), key=lambda fault: fault.sort_key)
+        )
         super().__init__(f"{len(self.faults)} fault(s)")
 
     def __str__(self) -> str:
@@ -85,14 +94,19 @@ class Faults(Exception):
 def _without_echoes(faults: list[Fault]) -> tuple[Fault, ...]:
     """Without what only follows from a text that YAML read differently than it was meant."""
     traps = [fault for fault in faults if fault.code in TRAPS]
-    return tuple(fault for fault in faults
-                 if fault.code in TRAPS or not any(_overlap(fault.place, trap.place) for trap in traps))
+    return tuple(
+        fault
+        for fault in faults
+        if fault.code in TRAPS or not any(_overlap(fault.place, trap.place) for trap in traps)
+    )
 
 
 def _overlap(one: Place, other: Place) -> bool:
-    return ((one.file, one.line) == (other.file, other.line)
-            and one.column < max(other.end_column, other.column + 1)
-            and other.column < max(one.end_column, one.column + 1))
+    return (
+        (one.file, one.line) == (other.file, other.line)
+        and one.column < max(other.end_column, other.column + 1)
+        and other.column < max(one.end_column, one.column + 1)
+    )
 
 
 class Collector:

@@ -4,16 +4,17 @@ from __future__ import annotations
 
 from pathlib import Path
 
-from calcbook.calcfile import Calculation, read_calculation, read_settings
+from calcbook.calcfile import Calculation, Settings, read_calculation, read_settings
 from calcbook.chain.analysis import NotConverged, analyse
 from calcbook.chain.build import build
 from calcbook.chain.outcome import Solved
-from calcbook.faults import Collector
+from calcbook.faults import Collector, Fault, Faults, Place
 from calcbook.library import Library
+from calcbook.links import ISSUED, Links, Source
 
 HOUSE_CARDS = "cards"
 
-__all__ = ["NotConverged", "read", "record", "solve", "solve_file"]
+__all__ = ["NotConverged", "read", "record_text", "solve", "solve_file"]
 
 
 def read(path: str | Path) -> Calculation:
@@ -23,7 +24,8 @@ def read(path: str | Path) -> Calculation:
     """
     path = Path(path)
     collector = Collector()
-    calculation = read_calculation(path, read_settings(path.parent), collector)
+    settings = read_settings(path.parent)
+    calculation = read_calculation(path, settings, collector, None, links_of(path, settings))
     collector.stop_if_any()
     return calculation
 
@@ -40,17 +42,50 @@ def solve(calculation: Calculation, library: Library | None = None) -> Solved:
     return solved
 
 
-def solve_file(path: Path, name: str | None = None) -> Solved:
+def solve_file(path: Path, name: str | None = None, above: tuple[Path, ...] = ()) -> Solved:
     """Read and solve a file, with the faults of both stages told at once.
 
-    Raises ``Faults`` and ``NotConverged``.
+    ``above`` are the files whose links led here, so that a circle is found. Raises ``Faults`` and
+    ``NotConverged``.
     """
     collector = Collector()
-    calculation = read_calculation(path, read_settings(path.parent), collector, name)
+    settings = read_settings(path.parent)
+    resolve = links_of(path, settings, above)
+    calculation = read_calculation(path, settings, collector, name, resolve)
     solved = _solved(calculation, Library(path.parent / HOUSE_CARDS), collector)
     collector.stop_if_any()
     assert solved is not None
     return solved
+
+
+def links_of(path: Path, settings: Settings, above: tuple[Path, ...] = ()) -> Links:
+    """What resolves the links of a calculation file: the files beside it, and the issued copies of its book."""
+    here = (*above, path.resolve())
+
+    def solve_source(source: Path) -> Source:
+        if source.resolve() in here:
+            names = " takes from ".join(item.stem for item in (*here, source))
+            raise Faults([Fault("link-circular", Place(path.name), "calculations take from each other in a circle",
+                                names, "links that end at a calculation without links")])
+        return source_of(solve_file(source, source.name, here))
+
+    return Links(path.parent, output_of(path, settings), solve_source)
+
+
+def output_of(path: Path, settings: Settings) -> Path:
+    """The folder of the records that belongs to a file: the book's own, `output` in the working folder, or, for
+    an issued copy, the folder it was issued into."""
+    if path.parent.parent.name == ISSUED:
+        return path.parent.parent.parent.parent
+    return path.parent / settings.output if settings.output else Path("output")
+
+
+def source_of(solved: Solved) -> Source:
+    """A solved calculation as a source of links."""
+    from calcbook.record import digest_of
+
+    results = {name: (result.value, result.kind.unit) for name, result in solved.base.results.items()}
+    return Source(solved.chain.calculation.revision, digest_of(solved).results, results, len(solved.open_items))
 
 
 def _solved(calculation: Calculation, library: Library, collector: Collector) -> Solved | None:
@@ -58,8 +93,8 @@ def _solved(calculation: Calculation, library: Library, collector: Collector) ->
     return analyse(chain, collector) if chain is not None else None
 
 
-def record(solved: Solved) -> str:
+def record_text(solved: Solved) -> str:
     """The Markdown text of a solved calculation's record."""
-    from calcbook.record import record_text
+    from calcbook import record
 
-    return record_text(solved)
+    return record.record_text(solved)

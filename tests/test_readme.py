@@ -10,7 +10,7 @@ import pytest
 
 from calcbook.commands import COMMANDS
 from calcbook.faults import Faults
-from calcbook.interface import read, record, solve
+from calcbook import read, record_text, solve
 from calcbook.library import vocabulary
 from calcbook.quantities import QuantityFault, read_quantity, read_tolerance
 
@@ -73,7 +73,7 @@ def test_the_example_solves_without_open_items(example: Path) -> None:
 
 
 def test_every_line_of_the_excerpt_is_a_line_of_the_record(example: Path) -> None:
-    lines = record(solve(read(example))).splitlines()
+    lines = record_text(solve(read(example))).splitlines()
     excerpt = [line for line in _only("markdown").splitlines() if line.strip()]
     assert len(excerpt) > 5
     assert [line for line in excerpt if line not in lines] == []

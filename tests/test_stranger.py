@@ -159,8 +159,8 @@ def evaluate(text: str, material: list[tuple[float, float]] | None = None) -> fl
 
 def _value(node: ast.expr, material: list[tuple[float, float]] | None) -> float | bool:
     match node:
-        case ast.Constant(value=bool() | int() | float()):
-            return node.value
+        case ast.Constant(value=bool() | int() | float() as value):
+            return value
         case ast.Name(id=name) if name in NAMES:
             return NAMES[name]
         case ast.UnaryOp(op=ast.USub(), operand=operand):
@@ -300,7 +300,8 @@ def figures_shown(page: PageRead) -> set[float]:
             for place, cell in enumerate(row):
                 if place != skipped:
                     found |= {abs(number(text)) for text in re.findall(NUMBER, cell)}
-    for _, _, sentence in (*page.sentences, *page.bullets):
+    bullets = (bullet for bullet in page.bullets if bullet[1] != CLEAN_LEAD)
+    for _, _, sentence in (*page.sentences, *bullets):
         found |= {abs(number(text)) for text in re.findall(NUMBER, sentence)}
     return found
 

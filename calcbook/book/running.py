@@ -80,20 +80,24 @@ def pool_map(work: Callable[[Found], Product], items: Sequence[Found], jobs: int
 def _texts(found: Found) -> Outcome | Texts:
     """Solve one file and make its texts; nothing is written yet."""
     try:
-        solved = solve_file(found.path, found.name)
+        return texts_of(found, solve_file(found.path, found.name))
     except Faults as faults:
         return Outcome(found.name, faults=faults.faults)
     except NotConverged as error:
         return Outcome(found.name, not_converged=str(error))
-    return texts_of(found, solved)
 
 
 def texts_of(found: Found, solved: Solved) -> Texts:
-    """Record and results of a solved calculation, from one digest and one list of versions."""
+    """Record and results of a solved calculation, from one digest and one list of versions.
+
+    Raises ``Faults`` when the sign-offs beside the file or an issued copy cannot be read.
+    """
+    from calcbook.revisions.lifecycle import life_of
     from calcbook.record import digest_of, markdown, record_blocks, results_text, software_of
 
     digest = digest_of(solved)
     software = software_of(digest)
+    life = life_of(found.path, solved, found.output)
     calculation = solved.chain.calculation
     outcome = Outcome(
         found.name,
@@ -103,7 +107,8 @@ def texts_of(found: Found, solved: Solved) -> Texts:
         conclusion(solved, "U_service"),
         len(solved.open_items),
     )
-    return Texts(found, outcome, markdown(record_blocks(solved, digest, software)), results_text(solved, digest, software))
+    record = markdown(record_blocks(solved, digest, software, life))
+    return Texts(found, outcome, record, results_text(solved, digest, software))
 
 
 def conclusion(solved: Solved, name: str) -> str:

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 
+from calcbook.calcfile.links import Link
 from calcbook.faults import Place
 from calcbook.formulas import Relation
 from calcbook.quantities import Quantity
@@ -52,6 +53,7 @@ class Given:
     source: str
     tolerance: Tolerance | None
     place: Place
+    link: Link | None = None
 
 
 @dataclass(frozen=True, slots=True)

@@ -13,7 +13,13 @@ HEAD = Description(
     "calculation",
     "title block of the calculation",
     (
-        Key("number", "unique number: letters, digits, - _ . (at most 40)", "name", required=True, example="WC-101"),
+        Key(
+            "number",
+            "unique number: letters, digits, - _ . (at most 40)",
+            "name",
+            required=True,
+            example="WC-101",
+        ),
         Key("title", "what is calculated", required=True),
         Key("plant", "plant or site", required=True),
         Key("revision", "revision letter or number", "name", required=True, example="A"),
@@ -39,15 +45,24 @@ TOLERANCE = Description(
         Key("k", "coverage factor of the expanded tolerance", "number"),
     ),
 )
+LINK = Description(
+    "a link",
+    "a result of another calculation",
+    (
+        Key("calculation", "number of the calculation", "name", required=True),
+        Key("result", "name of its result", "name", required=True),
+        Key("revision", "issued revision that the figure is taken from", "name"),
+    ),
+)
 GIVEN = Description(
     "a given",
     "a named input quantity",
     (
-        Key("value", "number with unit, as the source writes it", "name", required=True, example="15.75 mm"),
+        Key("value", "number with unit, as the source writes it", "name", example="15.75 mm"),
         Key("is", "what the symbol means"),
         Key("source", "document, revision and place the value comes from"),
         Key("tolerance", "half-width, or {standard: …}, or {expanded: …, k: 2}", "node", of=TOLERANCE),
-        Key("from", "a result of another calculation", "node", later=True),
+        Key("from", "a result of another calculation, in place of a value", "mapping", of=LINK),
     ),
 )
 DERIVED = Description(
@@ -139,7 +154,13 @@ GEOMETRY = Description(
     (
         Key("shape", "tube, plane or sphere", "choice", choices=("tube", "plane", "sphere"), required=True),
         Key("inside diameter", "bore of the tube", "node", of=SOURCED, quantity="inside diameter"),
-        Key("outside diameter", "outside diameter of the tube", "node", of=SOURCED, quantity="outside diameter"),
+        Key(
+            "outside diameter",
+            "outside diameter of the tube",
+            "node",
+            of=SOURCED,
+            quantity="outside diameter",
+        ),
         Key("length", "heated length of one tube", "node", of=SOURCED, quantity="length"),
         Key("parallel", "tubes that share the flow", "node", of=SOURCED, quantity="tubes in parallel"),
         Key("height", "height of a plane wall", "node", of=SOURCED, quantity="height"),
@@ -157,7 +178,14 @@ DEPOSIT = Description(
     "a fouling layer by thickness",
     (
         Key("thickness", "thickness of the layer", "node", of=SOURCED, quantity="thickness", required=True),
-        Key("conductivity", "conductivity of the layer", "node", of=SOURCED, quantity="wall conductivity", required=True),
+        Key(
+            "conductivity",
+            "conductivity of the layer",
+            "node",
+            of=SOURCED,
+            quantity="wall conductivity",
+            required=True,
+        ),
         Key("narrows", "whether it narrows the bore", "flag"),
     ),
 )
@@ -186,10 +214,18 @@ TERM = Description(
         Key("material", "material card of a wall", "name"),
         Key("conductivity", "stated wall conductivity", "node", of=SOURCED, quantity="wall conductivity"),
         Key("thickness", "wall thickness", "node", of=SOURCED, quantity="thickness"),
-        Key("outside diameter", "outside diameter of the wall", "node", of=SOURCED, quantity="outside diameter"),
+        Key(
+            "outside diameter",
+            "outside diameter of the wall",
+            "node",
+            of=SOURCED,
+            quantity="outside diameter",
+        ),
         Key("deposit", "fouling layer by thickness", "mapping", of=DEPOSIT),
         Key("emissivity", "emissivity of the surface", "node", of=SOURCED, quantity="emissivity"),
-        Key("surroundings", "temperature the surface radiates to", "node", of=SOURCED, quantity="temperature"),
+        Key(
+            "surroundings", "temperature the surface radiates to", "node", of=SOURCED, quantity="temperature"
+        ),
         Key("includes", "terms that a stated coefficient already includes", "list"),
         Key("holds for", "range in which a stated value holds: {symbol: low .. high}", "mapping"),
         Key("scales with", "factor on a stated value, as a relation", "relation"),
@@ -202,7 +238,17 @@ TERM = Description(
 # Which keys a term of each kind may have: a key that would have no effect is a fault.
 _STATED = ("coefficient", "resistance", "on")
 TERM_KEYS = {
-    "film": ("stream", "situation", "method", "with", *_STATED, "temperature", "includes", "holds for", "scales with"),
+    "film": (
+        "stream",
+        "situation",
+        "method",
+        "with",
+        *_STATED,
+        "temperature",
+        "includes",
+        "holds for",
+        "scales with",
+    ),
     "fouling": (*_STATED, "deposit"),
     "wall": ("material", "conductivity", "thickness", "outside diameter", "resistance", "on"),
     "contact": _STATED,
@@ -229,7 +275,9 @@ CRITERION = Description(
     "a criterion",
     "an acceptance criterion",
     (
-        Key("that", "<result> <op> <quantity or given>", required=True, example="U_service >= 1000 W/(m^2 K)"),
+        Key(
+            "that", "<result> <op> <quantity or given>", required=True, example="U_service >= 1000 W/(m^2 K)"
+        ),
         Key("source", "document the criterion comes from"),
     ),
 )
@@ -261,22 +309,48 @@ FILE = Description(
         Key("calculation", "title block", "mapping", of=HEAD, required=True),
         Key("purpose", "what decision the result serves", required=True),
         Key("revisions", "revision history", "list", of=REVISION),
-        Key("givens", "named input quantities", "mapping",
-            of=Description("givens", "", free=Key("<symbol>", "symbol of a given", "mapping", of=GIVEN))),
-        Key("derived", "relations over givens", "mapping",
-            of=Description("derived", "", free=Key("<symbol>", "symbol of a derived quantity", "mapping", of=DERIVED))),
-        Key("assumptions", "statements taken as true", "mapping",
-            of=Description("assumptions", "", free=Key("<id>", "A1, A2 …", "mapping", of=ASSUMPTION))),
-        Key("fluids", "fluids of this calculation", "mapping",
-            of=Description("fluids", "", free=Key("<name>", "name of a fluid", "mapping", of=FLUID))),
-        Key("streams", "fluids with state and flow", "mapping",
-            of=Description("streams", "", free=Key("<name>", "name of a stream", "mapping", of=STREAM))),
+        Key(
+            "givens",
+            "named input quantities",
+            "mapping",
+            of=Description("givens", "", free=Key("<symbol>", "symbol of a given", "mapping", of=GIVEN)),
+        ),
+        Key(
+            "derived",
+            "relations over givens",
+            "mapping",
+            of=Description(
+                "derived", "", free=Key("<symbol>", "symbol of a derived quantity", "mapping", of=DERIVED)
+            ),
+        ),
+        Key(
+            "assumptions",
+            "statements taken as true",
+            "mapping",
+            of=Description("assumptions", "", free=Key("<id>", "A1, A2 …", "mapping", of=ASSUMPTION)),
+        ),
+        Key(
+            "fluids",
+            "fluids of this calculation",
+            "mapping",
+            of=Description("fluids", "", free=Key("<name>", "name of a fluid", "mapping", of=FLUID)),
+        ),
+        Key(
+            "streams",
+            "fluids with state and flow",
+            "mapping",
+            of=Description("streams", "", free=Key("<name>", "name of a stream", "mapping", of=STREAM)),
+        ),
         Key("geometry", "shape and dimensions", "mapping", of=GEOMETRY, required=True),
         Key("resistances", "terms in order, from the inside to the outside", "list", of=TERM, required=True),
         Key("acceptance", "criteria stated before the result", "list", of=CRITERION),
         Key("report", "how results are reported", "mapping", of=REPORT, required=True),
-        Key("cases", "named variations of the givens", "mapping",
-            of=Description("cases", "", free=Key("<case>", "name of a case", "mapping"))),
+        Key(
+            "cases",
+            "named variations of the givens",
+            "mapping",
+            of=Description("cases", "", free=Key("<case>", "name of a case", "mapping")),
+        ),
         Key("accept", "answers to failed checks", "list", of=ACCEPT),
         Key("duty", "duty of the unit", "node", later=True),
         Key("sweep", "sweep over givens", "node", later=True),
@@ -308,11 +382,25 @@ BOOK = Description(
         Key("site pressure", "absolute pressure of the site", "node"),
         Key("units", "SI or US customary", "choice", choices=("SI", "US customary")),
         Key("output", "folder of the records, from the book's folder", "name"),
-        Key("revisions", "scheme of revision names", "choice", choices=("letters", "numbers", "letters then numbers")),
+        Key(
+            "revisions",
+            "scheme of revision names",
+            "choice",
+            choices=("letters", "numbers", "letters then numbers"),
+        ),
         Key("roles", "roles that sign", "list"),
-        Key("people", "people by id", "mapping",
-            of=Description("people", "", free=Key("<id>", "id of a person", "mapping", of=PERSON))),
+        Key(
+            "people",
+            "people by id",
+            "mapping",
+            of=Description("people", "", free=Key("<id>", "id of a person", "mapping", of=PERSON)),
+        ),
         Key("limits", "limits of the site", "mapping", of=BOOK_LIMITS),
-        Key("open items", "what open items block", "choice", choices=("refuse final issue", "refuse any issue")),
+        Key(
+            "open items",
+            "what open items block",
+            "choice",
+            choices=("refuse final issue", "refuse any issue"),
+        ),
     ),
 )

@@ -28,11 +28,12 @@ from calcbook.calcfile.calculation import (
     Tolerance,
     Value,
 )
+from calcbook.calcfile.links import LinkText, Resolve
 from calcbook.calcfile.meaning import meaning_of
 from calcbook.calcfile.tablefile import read_table_file
 from calcbook.documents import Description, Document, Fields, Node, Scalar, Sequence, read_file, read_mapping
 from calcbook.documents import Mapping as MappingNode
-from calcbook.faults import Collector, Place, nearest_names, shown
+from calcbook.faults import Collector, Faults, Place, nearest_names, shown
 from calcbook.formulas import Relation, RelationFault, parse_expression
 from calcbook.quantities import (
     Quantity,
@@ -47,32 +48,90 @@ from calcbook.quantities import (
 NUMBER = re.compile(r"[A-Za-z0-9][A-Za-z0-9_.-]{0,39}")
 SYMBOL = re.compile(r"[A-Za-z][A-Za-z0-9_]{0,39}")
 # What other ids of the chain start with: a term of that name would be taken for them.
-CLASHING_NAMES = frozenset("given derived geometry circuit solution book".split())
+CLASHING_NAMES = frozenset(["given", "derived", "geometry", "circuit", "solution", "book"])
 CLASHING_STARTS = ("stream ", "case ", "fluid ", "assumption ", "word ", "unread ")
 CASE_WORDS = ("all", "base", "clean", "service")
 RESERVED = frozenset(
-    "pi g_n sigma sqrt exp expm1 ln log log10 log1p abs min max sin cos tan asin acos atan sinh cosh tanh "
-    "gamma_p i0e i1e k0e k1e mean table yes no true false and or not if else".split()
+    [
+        "pi",
+        "g_n",
+        "sigma",
+        "sqrt",
+        "exp",
+        "expm1",
+        "ln",
+        "log",
+        "log10",
+        "log1p",
+        "abs",
+        "min",
+        "max",
+        "sin",
+        "cos",
+        "tan",
+        "asin",
+        "acos",
+        "atan",
+        "sinh",
+        "cosh",
+        "tanh",
+        "gamma_p",
+        "i0e",
+        "i1e",
+        "k0e",
+        "k1e",
+        "mean",
+        "table",
+        "yes",
+        "no",
+        "true",
+        "false",
+        "and",
+        "or",
+        "not",
+        "if",
+        "else",
+    ]
 )
 
 
-def read_calculation(path: Path, settings: Settings, collector: Collector, name: str | None = None) -> Calculation:
-    """Read a calculation file.
+def read_calculation(
+    path: Path,
+    settings: Settings,
+    collector: Collector,
+    name: str | None = None,
+    resolve: Resolve | None = None,
+) -> Calculation:
+    """Read a calculation file; ``resolve`` gives the figures of givens that are taken from other calculations.
 
     Faults that leave a calculation to speak of go to ``collector``; a file that is no YAML raises
     ``Faults`` at once.
     """
     document = read_file(path, name, collector)
-    return read_document(document, settings, collector, path.parent)
+    return read_document(document, settings, collector, path.parent, resolve)
 
 
-def read_document(document: Document, settings: Settings, collector: Collector, folder: Path) -> Calculation:
+def read_document(
+    document: Document,
+    settings: Settings,
+    collector: Collector,
+    folder: Path,
+    resolve: Resolve | None = None,
+) -> Calculation:
     """As ``read_calculation``, from a document that is already read."""
-    return _Reader(document, settings, collector, folder).calculation()
+    return _Reader(document, settings, collector, folder, resolve).calculation()
 
 
 class _Reader:
-    def __init__(self, document: Document, settings: Settings, collector: Collector, folder: Path):
+    def __init__(
+        self,
+        document: Document,
+        settings: Settings,
+        collector: Collector,
+        folder: Path,
+        resolve: Resolve | None,
+    ):
+        self.resolve = resolve
         self.document = document
         self.settings = settings
         self.collector = collector
@@ -134,7 +193,7 @@ class _Reader:
         return node.items if isinstance(node, Sequence) else ()
 
     def value(self, node: Node | None, description: Description = described.SOURCED) -> Value | None:
-        """A figure: a symbol or word, a quantity, or {value: …, source: …}. None only where none is written."""
+        """A figure: symbol, word, quantity, or {value: …, source: …}. None only where none is written."""
         if node is None:
             return None
         if isinstance(node, Scalar):
@@ -147,8 +206,13 @@ class _Reader:
             value = self.scalar_value(scalar, fields.text("source"), "source" in fields)
             at = fields.node("at")
             return value if at is None else replace(value, stated_at=self.flow_state(at))
-        self.collector.add("value-not-text", node.place, "a single value is wanted here", found="a list",
-                           expected="a symbol of the givens, or a number with its unit")
+        self.collector.add(
+            "value-not-text",
+            node.place,
+            "a single value is wanted here",
+            found="a list",
+            expected="a symbol of the givens, or a number with its unit",
+        )
         return Value("", node.place, is_broken=True)
 
     def flow_state(self, node: Node) -> dict[str, Value]:
@@ -171,8 +235,14 @@ class _Reader:
             return None
 
     def quantity_fault(self, node: Scalar, error: QuantityFault) -> None:
-        self.collector.add(error.code, node.part(error.column, error.end_column), error.message,
-                           found=error.found, expected=error.expected, nearest=error.nearest)
+        self.collector.add(
+            error.code,
+            node.part(error.column, error.end_column),
+            error.message,
+            found=error.found,
+            expected=error.expected,
+            nearest=error.nearest,
+        )
 
     def relation(self, node: Scalar | None) -> Relation | None:
         if node is None:
@@ -180,8 +250,14 @@ class _Reader:
         try:
             return parse_expression(node.text)
         except RelationFault as error:
-            self.collector.add(error.code, node.part(error.column, error.end_column), error.message,
-                               found=shown(node.text), expected=error.expected, nearest=error.nearest)
+            self.collector.add(
+                error.code,
+                node.part(error.column, error.end_column),
+                error.message,
+                found=shown(node.text),
+                expected=error.expected,
+                nearest=error.nearest,
+            )
             return None
 
     def date(self, fields: Fields, name: str) -> str:
@@ -193,8 +269,13 @@ class _Reader:
                 raise ValueError
             datetime.date.fromisoformat(node.text)
         except ValueError:
-            self.collector.add("date-unreadable", node.place, "this is no date of the calendar",
-                               found=shown(node.text), expected="YYYY-MM-DD")
+            self.collector.add(
+                "date-unreadable",
+                node.place,
+                "this is no date of the calendar",
+                found=shown(node.text),
+                expected="YYYY-MM-DD",
+            )
         return node.text
 
     # -- head ---------------------------------------------------------------------------------------
@@ -204,25 +285,37 @@ class _Reader:
         if node is None:
             return ""
         if not NUMBER.fullmatch(node.text) or node.text.endswith(".") or ".." in node.text:
-            self.collector.add("number-not-allowed", node.place, "this cannot be the number of a calculation",
-                               found=shown(node.text),
-                               expected="letters, digits, - _ . (at most 40), starting with a letter or digit")
+            self.collector.add(
+                "number-not-allowed",
+                node.place,
+                "this cannot be the number of a calculation",
+                found=shown(node.text),
+                expected="letters, digits, - _ . (at most 40), starting with a letter or digit",
+            )
         return node.text
 
     def revision_name(self, head: Fields) -> str:
         """The revision of a title block or of a line of the history."""
         node = head.scalar("revision")
         if node is not None and not re.fullmatch(r"[A-Za-z0-9][A-Za-z0-9.-]{0,9}", node.text):
-            self.collector.add("revision-not-allowed", node.place, "this cannot be a revision",
-                               found=shown(node.text), expected="a letter or number such as A, B or 2")
+            self.collector.add(
+                "revision-not-allowed",
+                node.place,
+                "this cannot be a revision",
+                found=shown(node.text),
+                expected="a letter or number such as A, B or 2",
+            )
         return node.text if node is not None else ""
 
     def revisions(self) -> tuple[Revision, ...]:
         result = []
         for item in self.items("revisions"):
             fields = read_mapping(item, described.REVISION, self.collector, item.place)
-            result.append(Revision(self.revision_name(fields), self.date(fields, "date"), fields.text("reason"),
-                                   item.place))
+            result.append(
+                Revision(
+                    self.revision_name(fields), self.date(fields, "date"), fields.text("reason"), item.place
+                )
+            )
         return tuple(result)
 
     # -- givens -------------------------------------------------------------------------------------
@@ -240,21 +333,81 @@ class _Reader:
     def given(self, key: Scalar, node: Node) -> Given | None:
         self.check_symbol(key)
         fields = read_mapping(node, described.GIVEN, self.collector, node.place)
+        if "from" in fields:
+            return self.linked(key, fields)
         scalar = fields.scalar("value")
+        if scalar is None and isinstance(node, MappingNode) and node.get("value") is None:
+            self.collector.add(
+                "key-missing",
+                fields.place,
+                "a given lacks the key `value`",
+                expected="value: number with unit, or from: {calculation: …, result: …}",
+            )
         quantity = self.quantity(scalar) if scalar is not None else None
         if scalar is None or quantity is None:
             return None
         text = " ".join(scalar.text.split())
-        value = Value(text, scalar.part(1, len(scalar.text) + 1), "", quantity, fields.text("source"),
-                      "source" in fields)
-        return Given(key.text, value, fields.text("is"), fields.text("source"),
-                     self.tolerance(fields.node("tolerance"), quantity), key.place)
+        value = Value(
+            text,
+            scalar.part(1, len(scalar.text) + 1),
+            "",
+            quantity,
+            fields.text("source"),
+            "source" in fields,
+        )
+        return Given(
+            key.text,
+            value,
+            fields.text("is"),
+            fields.text("source"),
+            self.tolerance(fields.node("tolerance"), quantity),
+            key.place,
+        )
+
+    def linked(self, key: Scalar, fields: Fields) -> Given | None:
+        """A given whose figure is a result of another calculation."""
+        node = fields.node("from")
+        place = fields.place_of("from")
+        inner = read_mapping(node, described.LINK, self.collector, place)
+        if "value" in fields:
+            self.collector.add(
+                "key-unknown",
+                fields.place_of("value"),
+                "a linked given has no value of its own",
+                expected="value or from, not both",
+            )
+        text = LinkText(inner.text("calculation"), inner.text("result"), inner.text("revision"), place)
+        if not text.calculation or not text.result:
+            return None
+        if self.resolve is None:
+            self.collector.add(
+                "link-source-unknown",
+                place,
+                "other calculations cannot be reached from here",
+                found=text.calculation,
+                expected="the calculation file in the folder of its book",
+            )
+            return None
+        try:
+            link = self.resolve(text)
+            quantity = read_any(link.text)
+        except Faults as faults:
+            self.collector.take(faults.faults)
+            return None
+        source = f"calculation {link.calculation} revision {link.revision}, {link.result}, digest {link.digest[:12]}"
+        value = Value(link.text, place, "", quantity, source, True)
+        tolerance = self.tolerance(fields.node("tolerance"), quantity)
+        return Given(key.text, value, fields.text("is"), source, tolerance, key.place, link)
 
     def check_symbol(self, key: Scalar) -> None:
         text = key.text
         if not SYMBOL.fullmatch(text) or keyword.iskeyword(text) or text in RESERVED:
-            self.collector.add("symbol-not-allowed", key.place, f"`{shown(text)}` cannot be a symbol",
-                               expected="a letter, then letters, digits or _, and no name of a function or constant")
+            self.collector.add(
+                "symbol-not-allowed",
+                key.place,
+                f"`{shown(text)}` cannot be a symbol",
+                expected="a letter, then letters, digits or _, and no name of a function or constant",
+            )
 
     def tolerance(self, node: Node | None, quantity: Quantity) -> Tolerance | None:
         if node is None:
@@ -264,8 +417,12 @@ class _Reader:
         fields = read_mapping(node, described.TOLERANCE, self.collector, node.place)
         stated = [kind for kind in ("standard", "expanded") if kind in fields]
         if not stated:
-            self.collector.add("key-missing", node.place, "a tolerance says `standard` or `expanded`",
-                               expected="{standard: 0.5 %} or {expanded: 1 %, k: 2}")
+            self.collector.add(
+                "key-missing",
+                node.place,
+                "a tolerance says `standard` or `expanded`",
+                expected="{standard: 0.5 %} or {expanded: 1 %, k: 2}",
+            )
             return None
         self.refuse_pair(fields, "standard", "expanded")
         self.refuse_pair(fields, "standard", "k")
@@ -290,8 +447,13 @@ class _Reader:
             return 1.0
         factor = float(node.text) if re.fullmatch(r"[0-9]{1,3}(\.[0-9]{1,15})?", node.text) else 0.0
         if not 0.0 < factor < 100.0:
-            self.collector.add("number-unreadable", node.place, "this is no coverage factor", found=shown(node.text),
-                               expected="a number such as 2")
+            self.collector.add(
+                "number-unreadable",
+                node.place,
+                "this is no coverage factor",
+                found=shown(node.text),
+                expected="a number such as 2",
+            )
             return 1.0
         return factor
 
@@ -301,8 +463,12 @@ class _Reader:
         for key, node in self.entries("derived"):
             self.check_symbol(key)
             if key.text in givens or key.text in self.broken:
-                self.collector.add("symbol-twice", key.place, f"`{key.text}` is a given and a derived quantity",
-                                   expected="one symbol for each quantity")
+                self.collector.add(
+                    "symbol-twice",
+                    key.place,
+                    f"`{key.text}` is a given and a derived quantity",
+                    expected="one symbol for each quantity",
+                )
                 continue
             fields = read_mapping(node, described.DERIVED, self.collector, node.place)
             scalar = fields.scalar("relation")
@@ -330,9 +496,14 @@ class _Reader:
 
     def report_symbol(self, symbol: str, place: Place, but: str = "") -> None:
         known = [name for name in self.symbols if name != but]
-        self.collector.add("symbol-unknown", place, f"`{shown(symbol)}` is neither a given nor derived",
-                           found=shown(symbol), expected=", ".join(known) or "a given of that symbol",
-                           nearest=nearest_names(symbol, known))
+        self.collector.add(
+            "symbol-unknown",
+            place,
+            f"`{shown(symbol)}` is neither a given nor derived",
+            found=shown(symbol),
+            expected=", ".join(known) or "a given of that symbol",
+            nearest=nearest_names(symbol, known),
+        )
 
     def without_broken(self, derived: dict[str, Derived]) -> dict[str, Derived]:
         """The derived quantities that have no fault and rest on no symbol that has one."""
@@ -348,8 +519,12 @@ class _Reader:
         result = []
         for key, node in self.entries("assumptions"):
             if not re.fullmatch(r"[A-Za-z][A-Za-z0-9_.-]{0,19}", key.text):
-                self.collector.add("name-not-allowed", key.place, f"an assumption cannot be called `{shown(key.text)}`",
-                                   expected="a letter, then letters, digits, - _ or ., such as A1")
+                self.collector.add(
+                    "name-not-allowed",
+                    key.place,
+                    f"an assumption cannot be called `{shown(key.text)}`",
+                    expected="a letter, then letters, digits, - _ or ., such as A1",
+                )
             fields = read_mapping(node, described.ASSUMPTION, self.collector, node.place)
             by = date = evidence = ""
             answer = fields.node("verified")
@@ -358,21 +533,38 @@ class _Reader:
                 by, date = verified.text("by"), self.date(verified, "date")
                 evidence = verified.text("evidence")
             elif isinstance(answer, Scalar) and answer.text not in ("no", "false"):
-                self.collector.add("verification-incomplete", answer.place, "a verified assumption says by whom and how",
-                                   found=shown(answer.text), expected="no, or {by: …, date: …, evidence: …}")
-            result.append(Assumption(key.text, fields.text("text"), fields.text("basis"), by, date, evidence, key.place))
+                self.collector.add(
+                    "verification-incomplete",
+                    answer.place,
+                    "a verified assumption says by whom and how",
+                    found=shown(answer.text),
+                    expected="no, or {by: …, date: …, evidence: …}",
+                )
+            result.append(
+                Assumption(key.text, fields.text("text"), fields.text("basis"), by, date, evidence, key.place)
+            )
         return tuple(result)
 
     # -- streams ------------------------------------------------------------------------------------
 
     def stream(self, key: Scalar, node: Node) -> Stream:
         if not key.text.strip() or "/" in key.text:
-            self.collector.add("name-not-allowed", key.place, f"a stream cannot be called `{shown(key.text)}`",
-                               expected="a name without /")
+            self.collector.add(
+                "name-not-allowed",
+                key.place,
+                f"a stream cannot be called `{shown(key.text)}`",
+                expected="a name without /",
+            )
         fields = read_mapping(node, described.STREAM, self.collector, node.place)
-        return Stream(key.text, self.fluid(fields.node("fluid")), self.value(fields.node("temperature")),
-                      self.value(fields.node("pressure")), self.value(fields.node("flow"), described.FLOW),
-                      fields.text("phase"), key.place)
+        return Stream(
+            key.text,
+            self.fluid(fields.node("fluid")),
+            self.value(fields.node("temperature")),
+            self.value(fields.node("pressure")),
+            self.value(fields.node("flow"), described.FLOW),
+            fields.text("phase"),
+            key.place,
+        )
 
     def fluid(self, node: Node | None) -> FluidText | None:
         """A fluid, or None where there is none or it has a fault."""
@@ -391,8 +583,12 @@ class _Reader:
             self.refuse_pair(fields, kinds[0], other)
         if not kinds:
             if isinstance(node, MappingNode) and not self.has_fault_in(node):
-                self.collector.add("key-missing", node.place, "a fluid is a name, a mixture, a table or constants",
-                                   expected="mixture: … | table: {…} | table file: … | constants: {…}")
+                self.collector.add(
+                    "key-missing",
+                    node.place,
+                    "a fluid is a name, a mixture, a table or constants",
+                    expected="mixture: … | table: {…} | table file: … | constants: {…}",
+                )
             return None
         source = fields.text("source")
         if kinds[0] == "mixture":
@@ -409,21 +605,38 @@ class _Reader:
         self.refuse_pair(fields, "mass fraction", "volume fraction")
         basis = next((key for key in ("mass fraction", "volume fraction") if key in fields), "")
         if not basis:
-            self.collector.add("key-missing", node.place, "a mixture says its mass or volume fraction",
-                               expected="mass fraction: 40 %")
+            self.collector.add(
+                "key-missing",
+                node.place,
+                "a mixture says its mass or volume fraction",
+                expected="mass fraction: 40 %",
+            )
             return None
-        return FluidText("mixture", fields.text("mixture"), fields.place_of("mixture"), basis,
-                         self.value(fields.node(basis)), source=source)
+        return FluidText(
+            "mixture",
+            fields.text("mixture"),
+            fields.place_of("mixture"),
+            basis,
+            self.value(fields.node(basis)),
+            source=source,
+        )
 
     def table_file(self, fields: Fields, name: str, source: str, place: Place) -> FluidText | None:
         scalar = fields.scalar("table file")
         assert scalar is not None
         if not re.fullmatch(r"[A-Za-z0-9][A-Za-z0-9 _.-]{0,99}", scalar.text):
-            self.collector.add("name-not-allowed", scalar.place, "a table file stands beside the calculation file",
-                               found=shown(scalar.text), expected="the bare name of a CSV file, such as oil.csv")
+            self.collector.add(
+                "name-not-allowed",
+                scalar.place,
+                "a table file stands beside the calculation file",
+                found=shown(scalar.text),
+                expected="the bare name of a CSV file, such as oil.csv",
+            )
             return None
         columns = read_table_file(self.folder / scalar.text, scalar.place, self.collector)
-        return FluidText("table", name, place, columns=columns, source=source) if columns is not None else None
+        return (
+            FluidText("table", name, place, columns=columns, source=source) if columns is not None else None
+        )
 
     def fluid_table(self, name: str, kind: str, body: Node, source: str, place: Place) -> FluidText | None:
         before = len(tuple(self.collector))
@@ -441,15 +654,28 @@ class _Reader:
         for column, values in columns.items():
             symbols = [value for value in values if value.symbol]
             for value in symbols:
-                self.collector.add("unit-missing", value.place, "a fluid's property is a number with its unit",
-                                   found=value.text, expected="a number with its unit, no symbol")
+                self.collector.add(
+                    "unit-missing",
+                    value.place,
+                    "a fluid's property is a number with its unit",
+                    found=value.text,
+                    expected="a number with its unit, no symbol",
+                )
             rows = len(columns.get("T", ()))
             if kind == "table" and rows and len(values) != rows:
-                self.collector.add("table-row-length", fields.place_of(column),
-                                   f"`{column}` has {len(values)} entries, T has {rows}", expected=f"{rows} entries")
+                self.collector.add(
+                    "table-row-length",
+                    fields.place_of(column),
+                    f"`{column}` has {len(values)} entries, T has {rows}",
+                    expected=f"{rows} entries",
+                )
             elif kind == "constants" and len(values) != 1:
-                self.collector.add("table-row-length", fields.place_of(column),
-                                   f"`{column}` has {len(values)} entries, a constant has one", expected="one figure")
+                self.collector.add(
+                    "table-row-length",
+                    fields.place_of(column),
+                    f"`{column}` has {len(values)} entries, a constant has one",
+                    expected="one figure",
+                )
         if len(tuple(self.collector)) > before:
             return None
         return FluidText(kind, name, place, columns=columns, astm=astm, source=source)
@@ -461,8 +687,13 @@ class _Reader:
             if len(pair) == 2 and pair[0] is not None and pair[1] is not None:
                 points.append((pair[0], pair[1]))
         if len(points) != 2:
-            self.collector.add("astm-points", place, "a D341 viscosity has two points",
-                               found=f"{len(points)}", expected="[[40 degC, 46 mm^2/s], [100 degC, 6.8 mm^2/s]]")
+            self.collector.add(
+                "astm-points",
+                place,
+                "a D341 viscosity has two points",
+                found=f"{len(points)}",
+                expected="[[40 degC, 46 mm^2/s], [100 degC, 6.8 mm^2/s]]",
+            )
             return ()
         return tuple(points)
 
@@ -474,9 +705,13 @@ class _Reader:
     def refuse_pair(self, fields: Fields, one: str, other: str) -> None:
         """A fault where two keys stand of which only one can."""
         if one in fields and other in fields:
-            self.collector.add("key-conflict", fields.key_places[other],
-                               f"`{other}` cannot stand beside `{one}`", found=f"`{one}` and `{other}`",
-                               expected="one of the two")
+            self.collector.add(
+                "key-conflict",
+                fields.key_places[other],
+                f"`{other}` cannot stand beside `{one}`",
+                found=f"`{one}` and `{other}`",
+                expected="one of the two",
+            )
 
     # -- geometry and terms -------------------------------------------------------------------------
 
@@ -485,8 +720,12 @@ class _Reader:
         if node is None:
             return None
         fields = read_mapping(node, described.GEOMETRY, self.collector, node.place)
-        dimensions = {name: value for name in fields if name != "shape"
-                      if (value := self.value(fields.node(name))) is not None}
+        dimensions = {
+            name: value
+            for name in fields
+            if name != "shape"
+            if (value := self.value(fields.node(name))) is not None
+        }
         return Geometry(fields.text("shape"), dimensions, node.place)
 
     def terms(self, node: Node | None) -> tuple[Term, ...]:
@@ -494,15 +733,24 @@ class _Reader:
         names: dict[str, Place] = {}
         if isinstance(node, Sequence) and not node.items:
             self.terms_hold = False
-            self.collector.add("value-missing", node.place, "a list of terms is empty",
-                               expected="terms in order, from the inside to the outside")
+            self.collector.add(
+                "value-missing",
+                node.place,
+                "a list of terms is empty",
+                expected="terms in order, from the inside to the outside",
+            )
         for index, item in enumerate(node.items if isinstance(node, Sequence) else ()):
             term = self.term(item, index)
             result.append(term)
             for part in (term, *term.branches):
                 if part.name in names:
-                    self.collector.add("term-twice", part.place_of("name"), f"two terms are called `{shown(part.name)}`",
-                                       found=f"first on line {names[part.name].line}", expected="each name once")
+                    self.collector.add(
+                        "term-twice",
+                        part.place_of("name"),
+                        f"two terms are called `{shown(part.name)}`",
+                        found=f"first on line {names[part.name].line}",
+                        expected="each name once",
+                    )
                 names.setdefault(part.name, part.place_of("name"))
         return tuple(result)
 
@@ -514,8 +762,16 @@ class _Reader:
             return self.parallel(fields, name)
         kind = self.term_kind(fields, node)
         text_keys = ("name", "kind", "stream", "situation", "method", "on", "material")
-        value_keys = ("coefficient", "resistance", "temperature", "conductivity", "thickness", "outside diameter",
-                      "emissivity", "surroundings")
+        value_keys = (
+            "coefficient",
+            "resistance",
+            "temperature",
+            "conductivity",
+            "thickness",
+            "outside diameter",
+            "emissivity",
+            "surroundings",
+        )
         values = {key: value for key in value_keys if (value := self.value(fields.node(key))) is not None}
         return Term(
             name=name,
@@ -544,8 +800,12 @@ class _Reader:
         kind = written.text if isinstance(written, Scalar) else ""
         for key in ("name", "kind"):
             if isinstance(node, MappingNode) and node.key(key) is None:
-                self.collector.add("key-missing", fields.place, f"a term lacks the key `{key}`",
-                                   expected="name: …, kind: " + " | ".join(described.TERM_KINDS))
+                self.collector.add(
+                    "key-missing",
+                    fields.place,
+                    f"a term lacks the key `{key}`",
+                    expected="name: …, kind: " + " | ".join(described.TERM_KINDS),
+                )
         if kind not in described.TERM_KINDS:
             self.terms_hold = self.terms_hold and bool(nearest_names(kind, described.TERM_KINDS))
             kind = next(iter(nearest_names(kind, described.TERM_KINDS)), "")
@@ -557,37 +817,60 @@ class _Reader:
         allowed = described.TERM_KEYS[kind]
         for key in fields:
             if key not in ("name", "kind", *allowed):
-                self.collector.add("key-unknown", fields.key_places[key], f"a term of kind {kind} has no key `{key}`",
-                                   found=key, expected=", ".join(("name", "kind", *allowed)),
-                                   nearest=nearest_names(key, allowed))
+                self.collector.add(
+                    "key-unknown",
+                    fields.key_places[key],
+                    f"a term of kind {kind} has no key `{key}`",
+                    found=key,
+                    expected=", ".join(("name", "kind", *allowed)),
+                    nearest=nearest_names(key, allowed),
+                )
         for one, other in described.TERM_CONFLICTS:
             if one in allowed and other in allowed:
                 self.refuse_pair(fields, one, other)
 
     def check_term_name(self, fields: Fields, name: str) -> None:
         if "/" in name or name in CLASHING_NAMES or name.startswith(CLASHING_STARTS):
-            self.collector.add("name-not-allowed", fields.place_of("name"), f"a term cannot be called `{shown(name)}`",
-                               found=shown(name),
-                               expected="a name without /, such as tube-side film, that does not start with a word"
-                               " such as given, derived, stream or case")
+            self.collector.add(
+                "name-not-allowed",
+                fields.place_of("name"),
+                f"a term cannot be called `{shown(name)}`",
+                found=shown(name),
+                expected="a name without /, such as tube-side film, that does not start with a word"
+                " such as given, derived, stream or case",
+            )
 
     def parallel(self, fields: Fields, name: str) -> Term:
         for key in fields:
             if key not in ("name", "parallel"):
-                self.collector.add("key-unknown", fields.key_places[key], f"a parallel entry has no key `{key}`",
-                                   found=key, expected="name, parallel")
+                self.collector.add(
+                    "key-unknown",
+                    fields.key_places[key],
+                    f"a parallel entry has no key `{key}`",
+                    found=key,
+                    expected="name, parallel",
+                )
         branches = self.terms(fields.node("parallel"))
         for branch in branches:
             if branch.kind not in ("film", "radiation"):
                 self.terms_hold = False
-                self.collector.add("term-order", branch.place_of("kind"),
-                                   "films and radiation can act side by side on a surface",
-                                   found=branch.kind, expected="kind: film or radiation")
+                self.collector.add(
+                    "term-order",
+                    branch.place_of("kind"),
+                    "films and radiation can act side by side on a surface",
+                    found=branch.kind,
+                    expected="kind: film or radiation",
+                )
         self.terms_hold = self.terms_hold and bool(branches)
         if "name" not in fields:
             name = " beside ".join(branch.name for branch in branches)
-        return Term(name, "parallel", fields.place, branches=branches,
-                    text_places={key: fields.place_of(key) for key in fields})
+        return Term(
+            name,
+            "parallel",
+            fields.place,
+            branches=branches,
+            text_places={key: fields.place_of(key) for key in fields},
+        )
 
     def with_values(self, node: Node | None) -> dict[str, Value]:
         if not isinstance(node, MappingNode):
@@ -598,8 +881,12 @@ class _Reader:
         if node is None:
             return None
         fields = read_mapping(node, described.DEPOSIT, self.collector, node.place)
-        return Deposit(self.value(fields.node("thickness")), self.value(fields.node("conductivity")),
-                       fields.text("narrows") in ("yes", "true"), node.place)
+        return Deposit(
+            self.value(fields.node("thickness")),
+            self.value(fields.node("conductivity")),
+            fields.text("narrows") in ("yes", "true"),
+            node.place,
+        )
 
     def names_of(self, node: Node | None) -> tuple[str, ...]:
         names = []
@@ -607,8 +894,9 @@ class _Reader:
             if isinstance(item, Scalar):
                 names.append(item.text)
             else:
-                self.collector.add("value-not-text", item.place, "the name of a term is wanted here",
-                                   expected="[tube wall]")
+                self.collector.add(
+                    "value-not-text", item.place, "the name of a term is wanted here", expected="[tube wall]"
+                )
         return tuple(names)
 
     def range_of(self, node: Node | None) -> tuple[Value, Value] | None:
@@ -619,27 +907,38 @@ class _Reader:
         if node is None:
             return None
         entries = node.entries if isinstance(node, MappingNode) else ()
-        if len(entries) == 1 and isinstance(entries[0][1], Scalar):
-            key, scalar = entries[0]
-            if key.text not in (*self.symbols, "flow", "temperature", "pressure"):
-                self.report_symbol(key.text, key.place)
-                return None
+        key, scalar = entries[0] if len(entries) == 1 else (None, node)
+        parts = None
+        if key is not None and isinstance(scalar, Scalar):
             parts = re.fullmatch(r"\s*(.*?\S)\s*\.\.\s*(\S.*?)\s*", scalar.text)
-            if parts is not None:
-                ends = [self.range_end(scalar, *parts.span(number)) for number in (1, 2)]
-                if any(end is None for end in ends) or key.text in self.broken:
-                    return None
-                low, high = (Value(end.text, scalar.place, "", end, key.text, True) for end in ends if end is not None)
-                if low.quantity is None or high.quantity is None or low.quantity.value < high.quantity.value:
-                    return low, high
-        place = entries[0][1].place if len(entries) == 1 else node.place
-        self.collector.add("range-unreadable", place, "`holds for` gives one symbol and its range, low to high",
-                           expected="holds for: {m_cold: 20 kg/s .. 26 kg/s}")
-        return None
+        if key is None or not isinstance(scalar, Scalar) or parts is None:
+            self.report_range(scalar.place)
+            return None
+        if key.text not in (*self.symbols, "flow", "temperature", "pressure"):
+            self.report_symbol(key.text, key.place)
+            return None
+        low, high = (self.range_end(scalar, *parts.span(number)) for number in (1, 2))
+        if low is None or high is None or key.text in self.broken:
+            return None
+        if low.dimension == high.dimension and not low.value < high.value:
+            self.report_range(scalar.place)
+            return None
+        return (
+            Value(low.text, scalar.place, "", low, key.text, True),
+            Value(high.text, scalar.place, "", high, key.text, True),
+        )
+
+    def report_range(self, place: Place) -> None:
+        self.collector.add(
+            "range-unreadable",
+            place,
+            "`holds for` gives one symbol and its range, low to high",
+            expected="holds for: {m_cold: 20 kg/s .. 26 kg/s}",
+        )
 
     def range_end(self, scalar: Scalar, start: int, end: int) -> Quantity | None:
-        part = Scalar(scalar.text[start:end], scalar.part(start + 1, end + 1))
-        return self.quantity(part)
+        """One end of a range, which stands from ``start`` to ``end`` in its text."""
+        return self.quantity(Scalar(scalar.text[start:end], scalar.part(start + 1, end + 1)))
 
     # -- acceptance, report, cases ------------------------------------------------------------------
 
@@ -658,11 +957,17 @@ class _Reader:
     def criterion(self, scalar: Scalar, source: str) -> Criterion | None:
         match = re.fullmatch(r"\s*(.+?)\s*(>=|<=|>|<)\s*([^=<>\s].*?)\s*", scalar.text, re.DOTALL)
         if match is None:
-            self.collector.add("criterion-unreadable", scalar.place, "a criterion is a result, an operator and a limit",
-                               found=shown(scalar.text), expected="U_service >= 1000 W/(m^2 K)")
+            self.collector.add(
+                "criterion-unreadable",
+                scalar.place,
+                "a criterion is a result, an operator and a limit",
+                found=shown(scalar.text),
+                expected="U_service >= 1000 W/(m^2 K)",
+            )
             return None
-        limit = self.scalar_value(Scalar(match.group(3), scalar.part(match.start(3) + 1, match.end(3) + 1)), source,
-                                  bool(source))
+        limit = self.scalar_value(
+            Scalar(match.group(3), scalar.part(match.start(3) + 1, match.end(3) + 1)), source, bool(source)
+        )
         if limit.symbol and limit.symbol not in self.symbols:
             self.report_symbol(limit.symbol, limit.place)
         result = " ".join(match.group(1).split())
@@ -676,21 +981,33 @@ class _Reader:
         by_quantity: dict[str, str] = {}
         if isinstance(units, Scalar):
             if units.text not in ("SI", "US customary"):
-                self.collector.add("choice-unknown", units.place, f"units cannot be `{shown(units.text)}`",
-                                   found=shown(units.text), expected="SI | US customary | a mapping of quantity: unit",
-                                   nearest=nearest_names(units.text, ("SI", "US customary")))
+                self.collector.add(
+                    "choice-unknown",
+                    units.place,
+                    f"units cannot be `{shown(units.text)}`",
+                    found=shown(units.text),
+                    expected="SI | US customary | a mapping of quantity: unit",
+                    nearest=nearest_names(units.text, ("SI", "US customary")),
+                )
             default = units.text
         elif isinstance(units, MappingNode):
             by_quantity = {key.text: self.unit(item) for key, item in units.entries}
         elif units is not None:
-            self.collector.add("value-not-text", units.place, "`units` must be a word or a mapping", found="a list",
-                               expected="SI | US customary | a mapping of quantity: unit")
+            self.collector.add(
+                "value-not-text",
+                units.place,
+                "`units` must be a word or a mapping",
+                found="a list",
+                expected="SI | US customary | a mapping of quantity: unit",
+            )
         return Report(fields.text("U on"), fields.place_of("U on"), default, by_quantity)
 
     def unit(self, node: Node) -> str:
         """The unit that a quantity is reported in."""
         if not isinstance(node, Scalar):
-            self.collector.add("value-not-text", node.place, "a unit is wanted here", expected="a unit such as W/(m^2 K)")
+            self.collector.add(
+                "value-not-text", node.place, "a unit is wanted here", expected="a unit such as W/(m^2 K)"
+            )
             return "1"
         try:
             unit_factor(node.text)
@@ -702,9 +1019,13 @@ class _Reader:
         result: dict[str, dict[str, Given]] = {}
         for key, node in self.entries("cases"):
             if not re.fullmatch(r"[A-Za-z0-9][A-Za-z0-9 _.-]{0,39}", key.text) or key.text in CASE_WORDS:
-                self.collector.add("name-not-allowed", key.place, f"a case cannot be called `{shown(key.text)}`",
-                                   found=shown(key.text),
-                                   expected=f"letters, digits, blanks, - _ . and not {', '.join(CASE_WORDS)}")
+                self.collector.add(
+                    "name-not-allowed",
+                    key.place,
+                    f"a case cannot be called `{shown(key.text)}`",
+                    found=shown(key.text),
+                    expected=f"letters, digits, blanks, - _ . and not {', '.join(CASE_WORDS)}",
+                )
             result[key.text] = self.case(node, givens)
         return result
 
@@ -717,9 +1038,14 @@ class _Reader:
                 if change is not None:
                     changes[key.text] = change
             elif key.text not in self.broken:
-                self.collector.add("symbol-unknown", key.place, f"a case restates givens; `{shown(key.text)}` is none",
-                                   found=shown(key.text), expected=", ".join(givens),
-                                   nearest=nearest_names(key.text, givens))
+                self.collector.add(
+                    "symbol-unknown",
+                    key.place,
+                    f"a case restates givens; `{shown(key.text)}` is none",
+                    found=shown(key.text),
+                    expected=", ".join(givens),
+                    nearest=nearest_names(key.text, givens),
+                )
         return changes
 
     def restated(self, key: Scalar, item: Node, base: Given) -> Given | None:
@@ -734,18 +1060,28 @@ class _Reader:
             found = self.given(key, item)
             if found is None:
                 return None
-            given = replace(found, meaning=found.meaning or base.meaning, tolerance=found.tolerance or base.tolerance)
+            given = replace(
+                found, meaning=found.meaning or base.meaning, tolerance=found.tolerance or base.tolerance
+            )
         before, after = base.value.quantity, given.value.quantity
         assert before is not None and after is not None
         if before.dimension != after.dimension:
-            self.collector.add("unit-dimension", given.value.place,
-                               f"a case restates `{key.text}` as another quantity",
-                               found=given.value.text, expected=f"a unit like that of {base.value.text}")
+            self.collector.add(
+                "unit-dimension",
+                given.value.place,
+                f"a case restates `{key.text}` as another quantity",
+                found=given.value.text,
+                expected=f"a unit like that of {base.value.text}",
+            )
             return None
         if "gauge" in (before.reading, after.reading) and before.reading != after.reading:
-            self.collector.add("unit-dimension", given.value.place,
-                               f"a case restates `{key.text}` on another pressure base",
-                               found=given.value.text, expected=f"gauge or absolute as in {base.value.text}")
+            self.collector.add(
+                "unit-dimension",
+                given.value.place,
+                f"a case restates `{key.text}` on another pressure base",
+                found=given.value.text,
+                expected=f"gauge or absolute as in {base.value.text}",
+            )
             return None
         return given
 
@@ -757,15 +1093,34 @@ class _Reader:
             bound = self.value(fields.node(direction)) if direction else None
             self.refuse_pair(fields, "down to", "up to")
             if not direction:
-                self.collector.add("key-missing", fields.place, "an accepted check states its bound",
-                                   expected="down to: … or up to: … (of the checked figure)")
+                self.collector.add(
+                    "key-missing",
+                    fields.place,
+                    "an accepted check states its bound",
+                    expected="down to: … or up to: … (of the checked figure)",
+                )
             known = ("all", "clean", "service", *cases)
             within = fields.scalar("in")
             if within is not None and within.text not in known:
-                self.collector.add("accept-unknown", within.place, f"`{shown(within.text)}` is no condition or case",
-                                   found=shown(within.text), expected=", ".join(known),
-                                   nearest=nearest_names(within.text, known))
+                self.collector.add(
+                    "accept-unknown",
+                    within.place,
+                    f"`{shown(within.text)}` is no condition or case",
+                    found=shown(within.text),
+                    expected=", ".join(known),
+                    nearest=nearest_names(within.text, known),
+                )
             check = " / ".join(part.strip() for part in fields.text("check").split("/"))
-            result.append(Acceptance(check, fields.text("in") or "all", direction, bound, fields.text("because"),
-                                     fields.text("by"), self.date(fields, "date"), fields.place_of("check")))
+            result.append(
+                Acceptance(
+                    check,
+                    fields.text("in") or "all",
+                    direction,
+                    bound,
+                    fields.text("because"),
+                    fields.text("by"),
+                    self.date(fields, "date"),
+                    fields.place_of("check"),
+                )
+            )
         return tuple(result)

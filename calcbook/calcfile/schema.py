@@ -49,6 +49,7 @@ def _key(key: Key, seen: tuple[str, ...]) -> Schema:
 
 
 def _value(key: Key, seen: tuple[str, ...]) -> Schema:
+    """What may stand as the value of a key; a heading without lines and a text not yet known may be empty."""
     inner = key.described()
     if key.kind == "choice":
         return {"enum": list(key.choices)}
@@ -57,11 +58,17 @@ def _value(key: Key, seen: tuple[str, ...]) -> Schema:
     if key.kind == "date":
         return {"type": "string", "format": "date"}
     if key.kind == "list":
-        return {"type": "array", "items": _mapping(inner, seen) if inner is not None and _fresh(inner, seen) else {}}
+        return {
+            "type": "array",
+            "items": _mapping(inner, seen) if inner is not None and _fresh(inner, seen) else {},
+        }
     if key.kind == "mapping":
-        return _mapping(inner, seen) if inner is not None else {"type": "object"}
+        mapping: Schema = _mapping(inner, seen) if inner is not None else {"type": "object"}
+        return mapping if key.required else {**mapping, "type": ["object", "null"]}
     if key.kind == "node":
         return _node(key, inner, seen)
+    if key.kind == "prose" and not key.required:
+        return {"type": ["string", "number", "boolean", "null"]}
     return dict(_ONE_VALUE)
 
 
@@ -75,4 +82,7 @@ def _node(key: Key, inner: Description | None, seen: tuple[str, ...]) -> Schema:
     if inner is None:
         return {"type": ["string", "number", "boolean", "object", "array"]}
     figure = inner in (described.SOURCED, described.FLOW)
-    return {"anyOf": [dict(_ONE_VALUE), _mapping(inner, seen)], **({"title": _FIGURE_MEANING} if figure else {})}
+    return {
+        "anyOf": [dict(_ONE_VALUE), _mapping(inner, seen)],
+        **({"title": _FIGURE_MEANING} if figure else {}),
+    }

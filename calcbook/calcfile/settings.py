@@ -27,8 +27,11 @@ def read_settings(folder: Path) -> Settings:
     document = read_file(path)
     fields = read_mapping(document.root, described.BOOK, collector, document.root.place)
     limits_node = fields.node("limits")
-    limits = read_mapping(limits_node, described.BOOK_LIMITS, collector, fields.place) if limits_node else Fields(
-        fields.place)
+    limits = (
+        read_mapping(limits_node, described.BOOK_LIMITS, collector, fields.place)
+        if limits_node
+        else Fields(fields.place)
+    )
     settings = Settings(
         name=fields.text("book"),
         site_pressure=_value(fields.node("site pressure"), collector),
@@ -68,10 +71,18 @@ def _value(node: Node | None, collector: Collector) -> Value | None:
         collector.add("value-not-text", node.place, "a number with its unit is wanted here")
         return None
     try:
-        return Value(scalar.text, scalar.place, quantity=read_any(scalar.text), source=source, has_source=has_source)
+        return Value(
+            scalar.text, scalar.place, quantity=read_any(scalar.text), source=source, has_source=has_source
+        )
     except QuantityFault as error:
-        collector.add(error.code, scalar.place, error.message, found=error.found, expected=error.expected,
-                      nearest=error.nearest)
+        collector.add(
+            error.code,
+            scalar.place,
+            error.message,
+            found=error.found,
+            expected=error.expected,
+            nearest=error.nearest,
+        )
         return None
 
 

@@ -31,8 +31,14 @@ def _lines(path: Path, place: Place, collector: Collector) -> list[str] | None:
             data = stream.read(MAXIMUM_BYTES + 1)
     except OSError:
         beside = sorted(item.name for item in path.parent.glob("*.csv"))
-        collector.add("file-not-found", place, "the table file cannot be read", found=path.name,
-                      expected="a CSV file beside the calculation file", nearest=nearest_names(path.name, beside))
+        collector.add(
+            "file-not-found",
+            place,
+            "the table file cannot be read",
+            found=path.name,
+            expected="a CSV file beside the calculation file",
+            nearest=nearest_names(path.name, beside),
+        )
         return None
     if len(data) > MAXIMUM_BYTES:
         collector.add("file-too-large", place, "the table file is too large", expected="at most 2 MB")
@@ -43,7 +49,9 @@ def _lines(path: Path, place: Place, collector: Collector) -> list[str] | None:
         collector.add("file-not-utf8", place, "the table file is not UTF-8 text", expected="UTF-8 text")
         return None
     if re.search("[\x00-\x08\x0b-\x0c\x0e-\x1f]", text):
-        collector.add("file-not-text", place, "the table file holds control characters", expected="plain text")
+        collector.add(
+            "file-not-text", place, "the table file holds control characters", expected="plain text"
+        )
         return None
     return re.split("\r\n|\r|\n", text)
 
@@ -52,23 +60,39 @@ def _columns(lines: list[str], name: str, place: Place, collector: Collector) ->
     # No quotes in a table of figures: each line is one row.
     rows = [(number, row) for number, line in enumerate(lines, 1) if any(row := _cells(line))]
     if len(rows) < 3:
-        collector.add("table-row-length", place, "the table file lacks rows",
-                      expected="a row of names, a row of units, then figures")
+        collector.add(
+            "table-row-length",
+            place,
+            "the table file lacks rows",
+            expected="a row of names, a row of units, then figures",
+        )
         return {}
     (first, names), (_, units) = rows[0], rows[1]
     for position, column in enumerate(names):
         where = _cell_place(name, first, lines[first - 1], position)
         if column not in COLUMNS:
-            collector.add("column-unknown", where, f"there is no property `{shown(column)}`", found=shown(column),
-                          expected=", ".join(COLUMNS), nearest=nearest_names(column, COLUMNS))
+            collector.add(
+                "column-unknown",
+                where,
+                f"there is no property `{shown(column)}`",
+                found=shown(column),
+                expected=", ".join(COLUMNS),
+                nearest=nearest_names(column, COLUMNS),
+            )
         elif column in names[:position]:
-            collector.add("key-twice", where, f"the column `{column}` stands twice", expected="each column once")
+            collector.add(
+                "key-twice", where, f"the column `{column}` stands twice", expected="each column once"
+            )
     columns: dict[str, list[Value]] = {column: [] for column in names if column in COLUMNS}
     for number, row in rows[1:]:
         line = lines[number - 1]
         if len(row) != len(names):
-            collector.add("table-row-length", Place(name, number, 1, len(line) + 1, line),
-                          f"the row has {len(row)} cells, the names have {len(names)}", expected=", ".join(names))
+            collector.add(
+                "table-row-length",
+                Place(name, number, 1, len(line) + 1, line),
+                f"the row has {len(row)} cells, the names have {len(names)}",
+                expected=", ".join(names),
+            )
         elif number != rows[1][0] and len(units) == len(names):
             for position, (column, cell, unit) in enumerate(zip(names, row, units, strict=True)):
                 if column in columns:
@@ -92,5 +116,11 @@ def _take(column: list[Value], text: str, where: Place, collector: Collector) ->
     try:
         column.append(Value(text, where, quantity=read_any(text)))
     except QuantityFault as error:
-        collector.add(error.code, where, error.message, found=error.found, expected=error.expected,
-                      nearest=error.nearest)
+        collector.add(
+            error.code,
+            where,
+            error.message,
+            found=error.found,
+            expected=error.expected,
+            nearest=error.nearest,
+        )

@@ -297,6 +297,8 @@ class _Analysis:
         used = {name: solution.number(f"{prefix}/{name}") for name in names if f"{prefix}/{name}" in solution.values}
         if not used or temperature not in solution.values:
             return None
+        if all(name in used for name in names[1:4]):
+            used["Prandtl number"] = used["viscosity"] * used["heat capacity"] / used["conductivity"]
         pressure = solution.number(state.pressure) if state.pressure else math.nan
         at = solution.number(temperature)
         bulk = solution.number(state.temperature)

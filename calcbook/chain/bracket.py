@@ -1,4 +1,4 @@
-"""What Newton's method leaves open, bracketed: in Q, where the summed drop rises with Q, and within it drop by drop.
+"""What Newton's method leaves open, bracketed: in Q, with which the summed drop rises, and drop by drop in it.
 
 A law that jumps at a joint can have no root there: then the side with the lower coefficient is held, both
 coefficients are kept, and the caller raises an open item. All samples are bracketed together.
@@ -135,8 +135,14 @@ def _root(excess: Excess, low: Array, high: Array) -> Array:
             middle = np.where(np.isfinite(line), line, middle)
         value = excess(middle)
         rises = value > 0.0
-        high, at_high = np.where(rises & open_places, middle, high), np.where(rises & open_places, value, at_high)
-        low, at_low = np.where(~rises & open_places, middle, low), np.where(~rises & open_places, value, at_low)
+        high, at_high = (
+            np.where(rises & open_places, middle, high),
+            np.where(rises & open_places, value, at_high),
+        )
+        low, at_low = (
+            np.where(~rises & open_places, middle, low),
+            np.where(~rises & open_places, value, at_low),
+        )
     nearest = np.where(np.abs(at_low) <= np.abs(at_high), low, high)
     return np.where(below, low, np.where(above, high, nearest))
 
@@ -173,7 +179,9 @@ def _hold(engine: Engine, group: Group, branch: Branch, samples: Array, drop: Ar
     first_is_lower = before <= after
     lower, upper = np.where(first_is_lower, before, after), np.where(first_is_lower, after, before)
     choice = np.where(first_is_lower, choice_before, choice_after)
-    low, high = engine.jump_sides.setdefault(branch.name, (np.full(engine.size, np.nan), np.full(engine.size, np.nan)))
+    low, high = engine.jump_sides.setdefault(
+        branch.name, (np.full(engine.size, np.nan), np.full(engine.size, np.nan))
+    )
     low[samples[jumps]], high[samples[jumps]] = lower[jumps], upper[jumps]
     by_choice = jumps & (choice_before != choice_after)
     chosen = engine.held_choice.setdefault(branch.name, np.full(engine.size, -1))

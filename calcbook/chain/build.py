@@ -6,6 +6,7 @@ from dataclasses import replace
 
 from calcbook.calcfile import Calculation
 from calcbook.calcfile.calculation import Derived, Term, Value
+from calcbook.calcfile.links import CURRENT
 from calcbook.chain.films import FilmScope
 from calcbook.chain.scope import Scope
 from calcbook.chain.streams import lay_out_stream
@@ -116,6 +117,9 @@ class _Builder:
             assert given.value.quantity is not None
             self.scope.dimensions[f"given/{symbol}"] = given.value.quantity.dimension
             self.scope.check_source(given.value, f"given/{symbol}")
+            if given.link is not None and given.link.state != CURRENT:
+                self.scope.open(f"given/{symbol}/link", "link", f"{symbol} takes {given.link.result} from"
+                                f" {given.link.calculation} revision {given.link.revision}: {given.link.state}.")
         for case, changes in self.calculation.cases.items():
             for symbol, given in changes.items():
                 self.scope.check_source(given.value, f"case {case}/{symbol}")
@@ -230,7 +234,7 @@ class _Builder:
                 at = wall.first + 1
             if term.name in included:
                 self.scope.assume(f"{term.name}/included", f"{term.name} is not counted: a stated coefficient includes it.",
-                                  "`includes` in the calculation file", term.name)
+                                  "stated in the calculation file", term.name)
                 continue
             elements.append(self._wall(wall, shape) if wall is not None else self._layer(term, shape, at))
         if any(element is None for element in elements):
@@ -242,7 +246,7 @@ class _Builder:
         if name:
             return shape.surface_named(self.scope, name, term.place_of("on"))
         self.scope.assume(f"{term.name}/on", f"{term.name} acts on the surface {shape.surfaces[default].name}.",
-                          "the surface next to it; `on` is not stated", term.name)
+                          "the surface next to it; no other is stated", term.name)
         return default
 
     def _layer(self, term: Term, shape: Shape, at: int) -> Layer | None:
@@ -462,7 +466,7 @@ class _Builder:
                 f"{term.name}/wetted diameter", "d_n", f"{key} over {term.name} (s = 1 in service, 0 clean)", term.name,
                 parse_expression(f"d {sign} 2*t*s"), {"d": wetted, "t": thickness, "s": SERVICE_FLAG}, "deposit", key)
         self.scope.assume(f"{layers[0].name}/narrows", f"The deposit moves the {side} surface that the fluid touches; the"
-                          " film is referred to the metal.", "`narrows: yes`", layers[0].name)
+                          " film is referred to the metal.", "narrows is answered by yes", layers[0].name)
         return {**shape.dimensions, key: wetted}, (wetted, metal)
 
     def _narrowing(self, side: str) -> list[Term]:

@@ -13,7 +13,7 @@ from calcbook.chain.outcome import CheckResult
 from calcbook.chain.solve import Solution
 from calcbook.chain.types import Chain, ChainCheck
 from calcbook.faults import Collector, nearest_names, shown
-from calcbook.formulas import Compare, Node, Number, Symbol, dimension, evaluate, number_text, write
+from calcbook.formulas import Compare, Node, Number, Symbol, dimension, evaluate, number_text, parse_number, write
 from calcbook.formulas.nodes import CONSTANTS
 from calcbook.quantities import DIMENSIONLESS, QuantityFault, read_any, si_unit, unit_display
 
@@ -64,7 +64,9 @@ def _limit_text(tree: Compare, operands: list[Node], place: int, arguments: Mapp
                 dims: Mapping[str, tuple], numbers: tuple[float, ...]) -> str:
     def text(index: int) -> str:
         operand = operands[index]
-        if isinstance(operand, Number) or not numbers:
+        if isinstance(operand, Number):
+            return plain_number(operand.value)
+        if not numbers:
             return write(operand)
         unit = unit_display(si_unit(dimension(operand, dims)))
         return apart(numbers[index], (numbers[place],)) + _unit(unit)
@@ -75,6 +77,11 @@ def _limit_text(tree: Compare, operands: list[Node], place: int, arguments: Mapp
     if place == 1:
         operator = {"≥": "≤", "≤": "≥", ">": "<", "<": ">"}.get(operator, operator)
     return f"{operator} {text(1 - place)}"
+
+
+def plain_number(value: float) -> str:
+    """A figure of a card as it is, in groups of three where it is long: 5000000.0 as 5 000 000."""
+    return number_text(value, 15) if value != int(value) else number_text(value, max(1, len(str(abs(int(value))))))
 
 
 def _unit(unit: str) -> str:
@@ -93,7 +100,8 @@ def apart(value: float, others: tuple[float, ...], digits: int = 5) -> str:
         return "not known"
     for more in range(digits, 18):
         text = number_text(value, more)
-        if all(value == other or number_text(other, more) != text for other in others):
+        printed = parse_number(text)
+        if all(value == other or parse_number(number_text(other, more)) != printed for other in others):
             return text
     return repr(value)
 

@@ -30,7 +30,7 @@ SMALLEST_STEP = 1e-13
 LARGEST_LOG_STEP = 2.0
 # Above this step (relative), and where a step is not this much smaller than the last, slopes are taken again.
 FRESH_SLOPES_ABOVE = 0.02
-SLOWEST_RATIO = 0.1
+SLOWEST_RATIO = 0.03
 # A pass may raise the residual that much before its step is halved.
 LARGEST_RISE = 2.0
 ROUNDING = 1e-12
@@ -57,14 +57,19 @@ def start(engine: Engine, samples: Array) -> tuple[Array, Array]:
     difference, still = engine.part(engine.difference, samples), engine.part(engine.still, samples)
     if engine.foreign:
         low, high = temperature_range(engine, samples)
-        drops = np.tile(np.sign(difference) * np.maximum(np.abs(difference) / (count + 1), 0.01 * (high - low)), (count, 1))
+        drops = np.tile(
+            np.sign(difference) * np.maximum(np.abs(difference) / (count + 1), 0.01 * (high - low)),
+            (count, 1),
+        )
         drops = np.where(drops == 0.0, 0.01 * (high - low), drops)
         flow, _, _ = engine.carried(0, drops, np.ones(len(samples)), samples)
         return flow, drops
     drops = np.tile(difference / (count + 1), (count, 1))
     flow = 0.5 * difference / np.where(still > 0.0, still, 1e-2)
     for _ in range(8):
-        resistances = np.array([drops[number] / engine.carried(number, drops, flow, samples)[0] for number in range(count)])
+        resistances = np.array(
+            [drops[number] / engine.carried(number, drops, flow, samples)[0] for number in range(count)]
+        )
         missing = ~np.isfinite(resistances).all(axis=0)
         if not missing.any():
             break
@@ -86,7 +91,7 @@ def temperature_range(engine: Engine, samples: Array) -> tuple[Array, Array]:
 
 @dataclass
 class _Slopes:
-    """The linear form of the laws: ``own[i][j]`` by drop j, ``flow[i]`` by the heat flow, with its sign changed."""
+    """The linear form of the laws: ``own[i][j]`` by drop j, ``flow[i]`` by the heat flow, negated."""
 
     own: Array
     flow: Array
@@ -143,7 +148,7 @@ class _Passes:
                 self._move(places, wants_slopes)
 
     def _move(self, places: Array, wants_slopes: bool) -> None:
-        """One pass for some samples: their laws at the unknowns, and the next step or half of the last one."""
+        """One pass for some samples: their laws, then the next step, or half of the last one."""
         unknown = _taken(self.unknown, places)
         residual, slopes = self._laws(unknown, places, wants_slopes)
         if slopes is None:
@@ -153,11 +158,17 @@ class _Passes:
         summed, weights, by_flow = self._sum(unknown, places)
         step = _substituted(slopes, residual, weights, by_flow, summed)
         merit = self._merit(residual, summed, places)
-        good = np.isfinite(step).all(axis=0) & (merit <= np.maximum(LARGEST_RISE * self.merit[places], ROUNDING))
+        good = np.isfinite(step).all(axis=0) & (
+            merit <= np.maximum(LARGEST_RISE * self.merit[places], ROUNDING)
+        )
         if not good.all():
             self._halve(places[~good])
-            step, unknown, merit, places = (_taken(step, np.flatnonzero(good)), _taken(unknown, np.flatnonzero(good)),
-                                            merit[good], places[good])
+            step, unknown, merit, places = (
+                _taken(step, np.flatnonzero(good)),
+                _taken(unknown, np.flatnonzero(good)),
+                merit[good],
+                places[good],
+            )
         if len(places):
             self._advance(places, unknown, step, merit)
 
@@ -166,8 +177,10 @@ class _Passes:
         if not self.engine.foreign:
             return np.maximum(np.abs(residual).max(axis=0), np.abs(summed))
         span = self.span[places]
-        return np.maximum(np.abs(residual).max(axis=0) / (np.abs(self.slopes.own[0, 0, places]) * span),
-                          np.abs(summed) / span)
+        return np.maximum(
+            np.abs(residual).max(axis=0) / (np.abs(self.slopes.own[0, 0, places]) * span),
+            np.abs(summed) / span,
+        )
 
     def _halve(self, places: Array) -> None:
         """Go back half of the last step: it led where a law has no value, or too far."""
@@ -188,7 +201,9 @@ class _Passes:
         self.length[places] = length
         self.fresh[places] = (length > FRESH_SLOPES_ABOVE) | (ratio > SLOWEST_RATIO)
         smallest = np.maximum(SMALLEST_STEP, self.engine.resolution(unknown[1:], self.samples[places]))
-        self.done[places] = (length <= smallest) | ((length * ratio <= STEP_TOLERANCE) & (ratio <= SLOWEST_RATIO))
+        self.done[places] = (length <= smallest) | (
+            (length * ratio <= STEP_TOLERANCE) & (ratio <= SLOWEST_RATIO)
+        )
 
     def _length(self, unknown: Array, step: Array, places: Array) -> Array:
         """The largest part of a step, relative to the unknowns."""
@@ -196,8 +211,12 @@ class _Passes:
             return np.abs(step).max(axis=0)
         # The heat flow may be nothing while parts of it are not: it is measured by what the drops carry.
         carried = np.abs(self.slopes.own[0, 0, places]) * self.span[places]
-        parts = np.vstack([(np.abs(step[0]) / (np.abs(unknown[0]) + carried))[None, :],
-                           np.abs(step[1:]) / (np.abs(unknown[1:]) + self.span[places])])
+        parts = np.vstack(
+            [
+                (np.abs(step[0]) / (np.abs(unknown[0]) + carried))[None, :],
+                np.abs(step[1:]) / (np.abs(unknown[1:]) + self.span[places]),
+            ]
+        )
         return parts.max(axis=0)
 
     def _stepped(self, unknown: Array, step: Array, places: Array) -> Array:
@@ -232,7 +251,7 @@ class _Passes:
         return residual, slopes
 
     def _sum(self, unknown: Array, places: Array) -> tuple[Array, Array, Array]:
-        """The summed drops less the whole difference, with the slopes of the sum by the drops and the flow."""
+        """The summed drops less the whole difference, with its slopes by the drops and the flow."""
         flow, drops = unknown[0], unknown[1:]
         difference, still = self.difference[places], self.still[places]
         if self.engine.foreign:
@@ -247,7 +266,7 @@ def _taken(rows: Array, places: Array) -> Array:
 
 
 def _substituted(slopes: _Slopes, residual: Array, weights: Array, by_flow: Array, summed: Array) -> Array:
-    """The Newton step: each drop's step as constant + factor * step of the flow, then the flow from the sum."""
+    """The Newton step: each drop as constant + factor * step of the flow, the flow from the sum."""
     count = len(residual)
     constants, factors = np.empty_like(residual), np.empty_like(residual)
     for number in range(count):

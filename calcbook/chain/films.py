@@ -24,6 +24,8 @@ PROPERTY_SYMBOLS = {
     "cp": "heat capacity",
     "beta": "expansion coefficient",
 }
+# Quantities without a meaning of their own: a step of that symbol is called by its symbol.
+PLAIN = ("ratio", "number", "angle")
 PLACE_MARKS = {"bulk": "b", "film": "f", "surface": "s"}
 
 
@@ -450,7 +452,7 @@ class FilmScope:
 
 def _kind_of_symbol(symbol: str):  # type: ignore[no-untyped-def]
     for kind in vocabulary().values():
-        if kind.symbol == symbol and kind.dimension == DIMENSIONLESS and not kind.flag:
+        if kind.symbol == symbol and kind.dimension == DIMENSIONLESS and not kind.flag and kind.name not in PLAIN:
             return kind
     return next((kind for kind in vocabulary().values() if kind.symbol == symbol and symbol in ("h", "R", "q")), None)
 

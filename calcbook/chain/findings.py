@@ -176,7 +176,8 @@ def assumptions_of(chain: Chain, solutions: Mapping[str, Solution]) -> tuple[Run
                 say(f"stream {state.name}/phase", f"{state.name} is taken as {phase}.",
                     f"state at {celsius(at)}" + (f" and {number_text(pressure / 1e5, 5)} bar" if pressure else ""),
                     f"stream {state.name}")
-    say("conditions", "Clean and service are compared at the stated bulk temperatures.", "no duty is stated", "U")
+    if chain.has_temperatures:
+        say("conditions", "Clean and service are compared at the stated bulk temperatures.", "no duty is stated", "U")
     sides = {layer.surface for layer in chain.elements if getattr(layer, "kind", "") == "fouling"}
     if not sides:
         say("fouling", "No fouling term is stated: clean and service are the same.", "the list of resistances", "U")

@@ -21,8 +21,13 @@ INPUT, UNKNOWN = "input ", "unknown "
 Line = dict[str, Array]
 
 
-def derivatives(chain: Chain, inputs: Mapping[str, Array], condition: str, wanted: tuple[str, ...],
-                solution: Solution | None = None) -> dict[str, dict[str, Array]]:
+def derivatives(
+    chain: Chain,
+    inputs: Mapping[str, Array],
+    condition: str,
+    wanted: tuple[str, ...],
+    solution: Solution | None = None,
+) -> dict[str, dict[str, Array]]:
     """Slopes of results (ids of steps) with respect to every input, SI units, in the samples' shape.
 
     A result that does not depend on an input has no entry for it. ``solution`` is that of the same inputs
@@ -56,7 +61,9 @@ def _alike(solution: Solution) -> list[Array]:
 class _Trace:
     """Every step once more at the solution, with every input and every unknown as a seed."""
 
-    def __init__(self, chain: Chain, inputs: Mapping[str, Array], condition: str, solution: Solution, samples: Array):
+    def __init__(
+        self, chain: Chain, inputs: Mapping[str, Array], condition: str, solution: Solution, samples: Array
+    ):
         self.chain = chain
         self.samples = samples
         self.solution = solution
@@ -97,11 +104,11 @@ class _Trace:
     def _total(self, name: str, moved: Mapping[str, Line]) -> Line:
         total: Line = {}
         for seed, slope in self.slopes.get(name, {}).items():
-            if seed in moved:
-                total = _added(total, moved[seed], slope)
-            else:
-                total = _added(total, {seed: slope})
-        return {seed.removeprefix(INPUT): np.broadcast_to(slope, self.samples.shape) for seed, slope in total.items()}
+            total = _added(total, moved[seed], slope) if seed in moved else _added(total, {seed: slope})
+        return {
+            seed.removeprefix(INPUT): np.broadcast_to(slope, self.samples.shape)
+            for seed, slope in total.items()
+        }
 
     # -- the laws -----------------------------------------------------------------------------------
 
@@ -113,7 +120,11 @@ class _Trace:
         for number, element in enumerate(self.chain.elements):
             seed = f"{UNKNOWN}{number + 1}"
             total[seed] = ONE
-            law = self._group(element, seed) if isinstance(element, Group) else self._layer(element, seed, temperature)
+            law = (
+                self._group(element, seed)
+                if isinstance(element, Group)
+                else self._layer(element, seed, temperature)
+            )
             laws.append(law)
             temperature = _added(temperature, {seed: -ONE})
         total = _added(total, self.slopes.get(self.chain.inner.bulk, {}), -ONE)
@@ -122,7 +133,10 @@ class _Trace:
     def _layer(self, layer: Layer, seed: str, before: Line) -> Line:
         """Slopes of drop - Q*R/A."""
         if layer.first_temperature:
-            for name, line in ((layer.first_temperature, before), (layer.second_temperature, _added(before, {seed: -ONE}))):
+            for name, line in (
+                (layer.first_temperature, before),
+                (layer.second_temperature, _added(before, {seed: -ONE})),
+            ):
                 self.values[name] = self._solved(name)
                 self.slopes[name] = line
             run(layer.steps, self.values, self.slopes)
@@ -141,8 +155,11 @@ class _Trace:
         values[group.surface_temperature] = self._solved(group.surface_temperature)
         values[group.flux] = self._solved(group.flux)
         slopes[group.surface_temperature] = _added(slopes.get(group.bulk, {}), {seed: np.asarray(sign)})
-        slopes[group.flux] = _added({f"{UNKNOWN}0": np.sign(flow) / values[area]}, slopes.get(area, {}),
-                                    -np.abs(flow) / values[area] ** 2)
+        slopes[group.flux] = _added(
+            {f"{UNKNOWN}0": np.sign(flow) / values[area]},
+            slopes.get(area, {}),
+            -np.abs(flow) / values[area] ** 2,
+        )
         law: Line = {f"{UNKNOWN}0": -ONE}
         for branch in group.branches:
             self._film(group, branch)
@@ -163,7 +180,9 @@ class _Trace:
         # The solution's own figure: a film held at a joint has one that its law does not give, and no slope.
         self.values[held] = self._solved(held)
         law = self.values[candidate.coefficient]
-        if candidate.coefficient in self.slopes and bool(np.all(np.abs(self.values[held] - law) <= 1e-9 * np.abs(law))):
+        if candidate.coefficient in self.slopes and bool(
+            np.all(np.abs(self.values[held] - law) <= 1e-9 * np.abs(law))
+        ):
             self.slopes[held] = self.slopes[candidate.coefficient]
 
     # -- the unknowns -------------------------------------------------------------------------------
@@ -181,7 +200,10 @@ class _Trace:
             for column, seed in enumerate(seeds):
                 right[:, row, column] = -np.asarray(law.get(seed, 0.0))
         moved = _solved(matrix, right)
-        return {name: {seed: moved[:, row, column] for column, seed in enumerate(seeds)} for row, name in enumerate(names)}
+        return {
+            name: {seed: moved[:, row, column] for column, seed in enumerate(seeds)}
+            for row, name in enumerate(names)
+        }
 
 
 def _solved(matrix: Array, right: Array) -> Array:

@@ -50,8 +50,13 @@ class Solution:
         return float(np.asarray(self.values[name]).ravel()[0])
 
 
-def solve(chain: Chain, inputs: Mapping[str, Array], condition: str,
-          forced: Mapping[str, Candidate] | None = None, keep: Collection[str] | None = None) -> Solution:
+def solve(
+    chain: Chain,
+    inputs: Mapping[str, Array],
+    condition: str,
+    forced: Mapping[str, Candidate] | None = None,
+    keep: Collection[str] | None = None,
+) -> Solution:
     """Solve a chain for one condition on SI arrays of its inputs (by id, broadcast together).
 
     ``forced`` puts a candidate in place of a film's own choice, for the cross-check. ``keep`` names the
@@ -94,7 +99,11 @@ class _Joined:
     upper: dict[str, Array] = field(default_factory=dict)
 
     def take(self, engine: Engine, piece: slice, keep: Collection[str] | None) -> None:
-        wanted = engine.values if keep is None else {name: engine.values[name] for name in keep if name in engine.values}
+        wanted = (
+            engine.values
+            if keep is None
+            else {name: engine.values[name] for name in keep if name in engine.values}
+        )
         for name, value in wanted.items():
             if isinstance(value, np.ndarray) and value.ndim:
                 self._put(self.values, name, value, piece, np.nan)
@@ -117,11 +126,17 @@ class _Joined:
         place[name][piece] = value
 
     def solution(self) -> Solution:
-        sides = {name: (self._shaped(self.lower[name]), self._shaped(self.upper[name])) for name in self.lower}
-        return Solution(self.condition, {name: self._shaped(value) for name, value in self.values.items()},
-                        {name: self._shaped(value) for name, value in self.chosen.items()},
-                        self._shaped(self.marks["converged"]),
-                        {name: self._shaped(value) for name, value in self.jumps.items()}, sides)
+        sides = {
+            name: (self._shaped(self.lower[name]), self._shaped(self.upper[name])) for name in self.lower
+        }
+        return Solution(
+            self.condition,
+            {name: self._shaped(value) for name, value in self.values.items()},
+            {name: self._shaped(value) for name, value in self.chosen.items()},
+            self._shaped(self.marks["converged"]),
+            {name: self._shaped(value) for name, value in self.jumps.items()},
+            sides,
+        )
 
     def _shaped(self, value: Array) -> Array:
         return value.reshape(self.shape) if isinstance(value, np.ndarray) and value.ndim else value
@@ -143,8 +158,14 @@ class _Plan:
 class Engine:
     """One piece of samples on its way to the solution."""
 
-    def __init__(self, chain: Chain, inputs: Mapping[str, Array], condition: str, forced: Mapping[str, Candidate],
-                 size: int):
+    def __init__(
+        self,
+        chain: Chain,
+        inputs: Mapping[str, Array],
+        condition: str,
+        forced: Mapping[str, Candidate],
+        size: int,
+    ):
         self.chain = chain
         self.forced = forced
         self.condition = condition
@@ -157,8 +178,11 @@ class Engine:
         self.moving = [element for element in chain.elements if follows_temperature(element)]
         # The number of a moving element; elements themselves are compared by all they hold, which takes long.
         self.numbers = {element.name: number for number, element in enumerate(self.moving)}
-        self.foreign = any(isinstance(element, Group) and any(branch.reference != element.bulk for branch in element.branches)
-                           for element in chain.elements)
+        self.foreign = any(
+            isinstance(element, Group)
+            and any(branch.reference != element.bulk for branch in element.branches)
+            for element in chain.elements
+        )
         self.plans: dict[str, _Plan] = {}
         self.choices: dict[str, Array] = {}
         self.areas: dict[str, Array] = {}
@@ -174,7 +198,10 @@ class Engine:
         """Close the circuit and evaluate every step at the answer, into ``values``."""
         run(self.chain.steps, self.values)
         self._clean_deposits()
-        self.areas = {element.name: self.full(self.chain.surfaces[element.surface].area) for element in self.chain.elements}
+        self.areas = {
+            element.name: self.full(self.chain.surfaces[element.surface].area)
+            for element in self.chain.elements
+        }
         if self.chain.has_temperatures:
             from calcbook.chain.closing import close
 
@@ -276,8 +303,9 @@ class Engine:
                 run((step,), self.values)
         return follows
 
-    def _evaluated(self, plan: _Plan, samples: Array, given: Mapping[str, Array], wants_slopes: bool
-                   ) -> tuple[Array, dict[str, Array]]:
+    def _evaluated(
+        self, plan: _Plan, samples: Array, given: Mapping[str, Array], wants_slopes: bool
+    ) -> tuple[Array, dict[str, Array]]:
         """The wanted figure of a plan on some samples, and its slopes in what is given."""
         count = (len(samples),)
         if not plan.following:
@@ -287,13 +315,22 @@ class Engine:
         slopes: Slopes | None = {name: {name: ONE} for name in given} if wants_slopes else None
         run(plan.following, values, slopes)
         carried = slopes.get(plan.wanted, {}) if slopes is not None else {}
-        return (np.broadcast_to(values[plan.wanted], count),
-                {name: np.broadcast_to(slope, count) for name, slope in carried.items()})
+        return (
+            np.broadcast_to(values[plan.wanted], count),
+            {name: np.broadcast_to(slope, count) for name, slope in carried.items()},
+        )
 
     # -- one film -----------------------------------------------------------------------------------
 
-    def film(self, group: Group, branch: Branch, samples: Array, surface: Array | None, flux: Array | None,
-             wants_slopes: bool) -> tuple[Array, dict[str, Array]]:
+    def film(
+        self,
+        group: Group,
+        branch: Branch,
+        samples: Array,
+        surface: Array | None,
+        flux: Array | None,
+        wants_slopes: bool,
+    ) -> tuple[Array, dict[str, Array]]:
         """Film coefficient of a branch on some samples, with its slopes in surface temperature and flux.
 
         ``surface`` and ``flux`` are None where no temperatures are known.
@@ -306,8 +343,14 @@ class Engine:
             coefficient, slopes = np.full(len(samples), np.nan), {}
             for method in np.unique(choice):
                 mask = choice == method
-                part, part_slopes = self._candidate(group, branch, int(method), samples[mask],
-                                                    {name: value[mask] for name, value in given.items()}, wants_slopes)
+                part, part_slopes = self._candidate(
+                    group,
+                    branch,
+                    int(method),
+                    samples[mask],
+                    {name: value[mask] for name, value in given.items()},
+                    wants_slopes,
+                )
                 coefficient[mask] = part
                 for name, slope in part_slopes.items():
                     slopes.setdefault(name, np.zeros(len(samples)))[mask] = slope
@@ -318,8 +361,15 @@ class Engine:
         slopes = {name: np.where(is_held, 0.0, slope) for name, slope in slopes.items()}
         return np.where(is_held, held[samples], coefficient), slopes
 
-    def _candidate(self, group: Group, branch: Branch, method: int, samples: Array, given: Mapping[str, Array],
-                   wants_slopes: bool) -> tuple[Array, dict[str, Array]]:
+    def _candidate(
+        self,
+        group: Group,
+        branch: Branch,
+        method: int,
+        samples: Array,
+        given: Mapping[str, Array],
+        wants_slopes: bool,
+    ) -> tuple[Array, dict[str, Array]]:
         candidate = self.forced.get(branch.name) or branch.candidates[method]
         plan = self._plan(candidate.coefficient, candidate.steps, _moving(group))
         return self._evaluated(plan, samples, given, wants_slopes)
@@ -363,8 +413,9 @@ class Engine:
 
     # -- what the moving elements carry -------------------------------------------------------------
 
-    def carried(self, number: int, drops: Array, flow: Array, samples: Array, wants_slopes: bool = False
-                ) -> tuple[Array, dict[int, Array], Array]:
+    def carried(
+        self, number: int, drops: Array, flow: Array, samples: Array, wants_slopes: bool = False
+    ) -> tuple[Array, dict[int, Array], Array]:
         """Heat flow of one moving element at its drop; slopes by drops (by number) and by the heat flow."""
         element = self.moving[number]
         area = self.part(self.areas[element.name], samples)
@@ -372,15 +423,29 @@ class Engine:
             return self._carried_by_films(element, number, drops, flow, samples, area, wants_slopes)
         return self._carried_by_wall(element, number, drops, flow, samples, area, wants_slopes)
 
-    def _carried_by_films(self, group: Group, number: int, drops: Array, flow: Array, samples: Array, area: Array,
-                          wants_slopes: bool) -> tuple[Array, dict[int, Array], Array]:
+    def _carried_by_films(
+        self,
+        group: Group,
+        number: int,
+        drops: Array,
+        flow: Array,
+        samples: Array,
+        area: Array,
+        wants_slopes: bool,
+    ) -> tuple[Array, dict[int, Array], Array]:
         sign = outward(group)
         drop = drops[number]
         bulk = self.at(group.bulk, samples)
         total, by_drop, by_flow = np.zeros(len(samples)), np.zeros(len(samples)), np.zeros(len(samples))
         for branch in group.branches:
-            coefficient, slopes = self.film(group, branch, samples, bulk + sign * drop, np.abs(flow) / area, wants_slopes)
-            driving = drop if branch.reference == group.bulk else drop + sign * (bulk - self.at(branch.reference, samples))
+            coefficient, slopes = self.film(
+                group, branch, samples, bulk + sign * drop, np.abs(flow) / area, wants_slopes
+            )
+            driving = (
+                drop
+                if branch.reference == group.bulk
+                else drop + sign * (bulk - self.at(branch.reference, samples))
+            )
             total = total + coefficient * area * driving
             if wants_slopes:
                 by_drop = by_drop + coefficient * area
@@ -390,8 +455,16 @@ class Engine:
                     by_flow = by_flow + slopes[group.flux] * np.sign(flow) * driving
         return total, {number: by_drop}, by_flow
 
-    def _carried_by_wall(self, wall: Layer, number: int, drops: Array, flow: Array, samples: Array, area: Array,
-                         wants_slopes: bool) -> tuple[Array, dict[int, Array], Array]:
+    def _carried_by_wall(
+        self,
+        wall: Layer,
+        number: int,
+        drops: Array,
+        flow: Array,
+        samples: Array,
+        area: Array,
+        wants_slopes: bool,
+    ) -> tuple[Array, dict[int, Array], Array]:
         first, before, resistance_before = self._before(wall, drops, flow, samples)
         plan = self._plan(wall.resistance, wall.steps, (wall.first_temperature, wall.second_temperature))
         given = {wall.first_temperature: first, wall.second_temperature: first - drops[number]}
@@ -406,12 +479,16 @@ class Engine:
         by_drop[number] = area / resistance - by_second
         return total, by_drop, -by_level * resistance_before
 
-    def _before(self, wall: Layer, drops: Array, flow: Array, samples: Array) -> tuple[Array, list[int], Array]:
+    def _before(
+        self, wall: Layer, drops: Array, flow: Array, samples: Array
+    ) -> tuple[Array, list[int], Array]:
         """Temperature on the inner side of a wall: the inner bulk less every drop before it.
 
         Also the numbers of the moving elements before it, and the resistance of the others.
         """
-        temperature = np.broadcast_to(np.asarray(self.at(self.chain.inner.bulk, samples), dtype=float), (len(samples),))
+        temperature = np.broadcast_to(
+            np.asarray(self.at(self.chain.inner.bulk, samples), dtype=float), (len(samples),)
+        )
         numbers: list[int] = []
         resistance = np.zeros(len(samples))
         for element in self.chain.elements:
@@ -433,7 +510,9 @@ class Engine:
         for group in (self.chain.inner, self.chain.outer):
             if self.chain.has_temperatures:
                 drop = self._drop(group)
-                self.values[group.surface_temperature] = self._as_input(self.full(group.bulk) + outward(group) * drop)
+                self.values[group.surface_temperature] = self._as_input(
+                    self.full(group.bulk) + outward(group) * drop
+                )
                 self.values[group.flux] = self._as_input(np.abs(self.flow) / self.areas[group.name])
             for branch in group.branches:
                 self._finish_film(group, branch)
@@ -479,8 +558,14 @@ class Engine:
             candidate = branch.candidates[int(method)]
             samples = np.flatnonzero(choice == method)
             follows = self._stay(candidate.steps, _moving(group))
-            names = {bound for step in candidate.steps for bound in step.inputs.values()} - follows | set(_moving(group))
-            part = {name: self.at(name, samples) for name in names | {candidate.coefficient} if name in self.values}
+            names = {bound for step in candidate.steps for bound in step.inputs.values()} - follows | set(
+                _moving(group)
+            )
+            part = {
+                name: self.at(name, samples)
+                for name in names | {candidate.coefficient}
+                if name in self.values
+            }
             following = tuple(step for step in candidate.steps if step.id in follows)
             run(following, part)
             coefficient[samples] = part[candidate.coefficient]
@@ -507,7 +592,7 @@ class Engine:
         return np.where(np.isfinite(worst) & np.isfinite(self.flow), worst, np.inf)
 
     def _finished_flow(self, element: Group | Layer, drop: Array) -> tuple[Array, Array]:
-        """Heat flow of a moving element from its finished figures, and the flows of its branches without sign."""
+        """Heat flow of a moving element from its finished figures, and its branches' flows without sign."""
         area = self.areas[element.name]
         if isinstance(element, Layer):
             flow = drop * area / self.full(element.resistance)
@@ -515,7 +600,9 @@ class Engine:
         total, weight = np.zeros(self.size), np.zeros(self.size)
         surface, sign = self.full(element.surface_temperature), outward(element)
         for branch in element.branches:
-            driving = drop if branch.reference == element.bulk else sign * (surface - self.full(branch.reference))
+            driving = (
+                drop if branch.reference == element.bulk else sign * (surface - self.full(branch.reference))
+            )
             flow = self.full(branch_coefficient(element, branch.name)) * area * driving
             total, weight = total + flow, weight + np.abs(flow)
         return total, weight

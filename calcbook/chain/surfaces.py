@@ -164,7 +164,7 @@ def _length(scope: Scope, geometry: Geometry, values: dict[str, str]) -> tuple[s
     if not count:
         count = scope.constant("geometry/one tube", 1.0)
         if geometry.shape == "tube":
-            scope.assume("geometry/parallel", "One tube carries the flow.", "`parallel` is not stated", "geometry")
+            scope.assume("geometry/parallel", "One tube carries the flow.", "no number of tubes in parallel is stated", "geometry")
     length = values.get("length", "")
     if length or geometry.shape == "sphere":
         return length, count, False

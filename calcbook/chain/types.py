@@ -181,7 +181,7 @@ class RunnerAssumption:
 
 @dataclass(frozen=True, slots=True)
 class OpenItem:
-    """What blocks issue. Kinds: check, source, assumption, state, jump, criterion."""
+    """What blocks issue. Kinds: check, source, assumption, state, jump, link."""
 
     id: str
     kind: str

@@ -12,7 +12,7 @@ import importlib
 
 import click
 
-COMMANDS = ("run", "new", "library", "verify", "schema", "sign", "issue", "revise", "register", "audit")
+COMMANDS = ("run", "new", "library", "verify", "schema", "sign", "issue", "revise", "register", "audit", "compare", "recall")
 
 
 class _Commands(click.Group):

@@ -27,7 +27,9 @@ class Operation(Protocol):
 
     def value(self, arguments: Mapping[str, Array]) -> Array: ...
 
-    def slopes(self, arguments: Mapping[str, Array], value: Array, wanted: Iterable[str]) -> dict[str, Array]: ...
+    def slopes(
+        self, arguments: Mapping[str, Array], value: Array, wanted: Iterable[str]
+    ) -> dict[str, Array]: ...
 
 
 @dataclass(frozen=True, slots=True)
@@ -64,11 +66,16 @@ class LookupOperation:
     def slopes(self, arguments: Mapping[str, Array], value: Array, wanted: Iterable[str]) -> dict[str, Array]:
         found = self._find(arguments)[1]
         zero = np.zeros_like(value)
-        return {symbol: found if self.table.by[symbol] in ("linear", "log-log") else zero for symbol in wanted}
+        return {
+            symbol: found if self.table.by[symbol] in ("linear", "log-log") else zero for symbol in wanted
+        }
 
     def _find(self, arguments: Mapping[str, Array]) -> tuple[Array, Array]:
         shape = np.broadcast_shapes(*(np.shape(arguments[symbol]) for symbol in self.table.by))
-        flat = {symbol: np.broadcast_to(arguments[symbol], shape).ravel().astype(float) for symbol in self.table.by}
+        flat = {
+            symbol: np.broadcast_to(arguments[symbol], shape).ravel().astype(float)
+            for symbol in self.table.by
+        }
         rows = np.ones((len(self.table.cells), int(np.prod(shape, dtype=int))), dtype=bool)
         interpolated = ""
         for symbol, way in self.table.by.items():
@@ -100,8 +107,10 @@ class LookupOperation:
         alike = np.ones((len(low), len(low)), dtype=bool)
         for cells in exact:
             alike &= cells[:, None] == cells[None, :]
-        return (low == np.where(alike, low[None, :], np.inf).min(axis=1),
-                high == np.where(alike, high[None, :], -np.inf).max(axis=1))
+        return (
+            low == np.where(alike, low[None, :], np.inf).min(axis=1),
+            high == np.where(alike, high[None, :], -np.inf).max(axis=1),
+        )
 
     def _pick(self, rows: Array, flat: Mapping[str, Array], interpolated: str) -> tuple[Array, Array]:
         column = self._cells(self.column)
@@ -116,7 +125,10 @@ class LookupOperation:
             samples = (rows == pattern[:, None]).all(axis=0)
             if pattern.any():
                 values[samples], slopes[samples] = self._between(
-                    self._cells(interpolated)[pattern], column[pattern], flat[interpolated][samples], interpolated
+                    self._cells(interpolated)[pattern],
+                    column[pattern],
+                    flat[interpolated][samples],
+                    interpolated,
                 )
         return values, slopes
 

@@ -1,8 +1,9 @@
 """The record room: a solved calculation to blocks, blocks to Markdown, and the results file.
 
 It prints what the chain holds: it formats, sorts and chooses digits. May import: ``chain``, ``calcfile``,
-``library``, ``formulas``, ``quantities``, ``faults`` and the backend version of ``properties``. Must never:
-compute a physical figure, read a file, look at a clock, or turn blocks into Markdown outside ``markdown.py``.
+``library``, ``formulas``, ``quantities``, ``fault_codes``, and of ``properties`` the backend version and the
+names of fluids. Must never: compute a physical figure, read a file, look at a clock, or turn blocks into
+Markdown outside ``markdown.py``.
 """
 
 from calcbook.record.blocks import Block, Bullets, Code, Heading, Paragraph, Quote, Table

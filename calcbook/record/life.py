@@ -29,7 +29,8 @@ class Life:
 
     ``issued`` says the kind, revision and date of the issue that this content has, or is empty. ``notice`` holds
     the sentences that must stand on top of the record: a preliminary issue, a calculation that is void.
-    ``changes`` are the blocks of the short comparison with the last issued revision.
+    ``changes`` are the blocks of the short comparison with the last issued revision. ``answers`` are the words of
+    the checkers whose sign-off is valid, by the number of the question in the review.
     """
 
     state: str = "in preparation"
@@ -37,3 +38,8 @@ class Life:
     issued: str = ""
     notice: tuple[str, ...] = ()
     changes: tuple[Block, ...] = ()
+
+    def line(self, role: str) -> SignOffLine | None:
+        """The sign-off line of a role, if there is one."""
+        return next((line for line in self.signoffs if line.role == role), None)
+    answers: tuple[tuple[int, str], ...] = ()

@@ -10,6 +10,7 @@ from calcbook.chain.outcome import CaseOutcome, CheckResult, Result, Solved
 from calcbook.chain.types import Chain
 from calcbook.library.cards import Material, Method, Situation
 from calcbook.record.digest import Digest
+from calcbook.record.life import Life
 from calcbook.record.software import Software
 
 
@@ -20,6 +21,7 @@ class Page:
     solved: Solved
     digest: Digest
     software: Software
+    life: Life = Life()
 
     @property
     def chain(self) -> Chain:

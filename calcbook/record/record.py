@@ -7,6 +7,7 @@ from collections.abc import Callable
 from calcbook.chain.outcome import Solved
 from calcbook.record.blocks import Block
 from calcbook.record.digest import Digest, digest_of
+from calcbook.record.life import Life
 from calcbook.record.markdown import markdown
 from calcbook.record.page import Page
 from calcbook.record.sections.cases import cases, sensitivity
@@ -41,12 +42,14 @@ SECTIONS: tuple[Callable[[Page], list[Block]], ...] = (
 )
 
 
-def record_blocks(solved: Solved, digest: Digest, software: Software | None = None) -> tuple[Block, ...]:
-    """The blocks of a record; without ``software`` that of this installation."""
-    page = Page(solved, digest, software or software_of(digest))
+def record_blocks(
+    solved: Solved, digest: Digest, software: Software | None = None, life: Life | None = None
+) -> tuple[Block, ...]:
+    """The blocks of a record; without ``software`` that of this installation, without ``life`` not signed."""
+    page = Page(solved, digest, software or software_of(digest), life or Life())
     return tuple(block for section in SECTIONS for block in section(page))
 
 
-def record_text(solved: Solved) -> str:
-    """The Markdown text of a record."""
-    return markdown(record_blocks(solved, digest_of(solved)))
+def record_text(solved: Solved, life: Life | None = None) -> str:
+    """The Markdown text of a record, with the life of the calculation where it is known."""
+    return markdown(record_blocks(solved, digest_of(solved), None, life))

@@ -13,7 +13,7 @@ from typing import Any
 from calcbook.chain.fluids import LiquidOperation, PropertyOperation
 from calcbook.chain.outcome import CaseOutcome, StepRow
 from calcbook.chain.solve import Solution
-from calcbook.chain.types import CLEAN, CONDITIONS, SERVICE, Chain, ChainStep, Group, Layer
+from calcbook.chain.types import CLEAN, CONDITIONS, SERVICE, Chain, ChainStep, Group, Layer, StreamState
 from calcbook.formulas import (
     Compare,
     Node,
@@ -34,6 +34,7 @@ Values = Mapping[str, Any]
 PASCALS_OF_BAR = 1e5
 LISTED_DIGITS = 7
 NO_DEPOSIT = "no deposit"
+SATURATED = "saturated"
 
 
 @dataclass(frozen=True, slots=True)
@@ -208,6 +209,8 @@ class StepTexts:
             parts.append(f"{basis} {number(solution.number(step.inputs['w']), 4)}")
         if "p" in step.inputs:
             parts.append(f"{number(solution.number(step.inputs['p']) / PASCALS_OF_BAR, 5)} bar")
+        elif asked.source.text.kind == "name":
+            parts.append(SATURATED)
         phase = asked.phase or self._phase(step, temperature, condition)
         return ", ".join([*parts, *([phase] if phase else [])])
 
@@ -281,6 +284,11 @@ class StepTexts:
         if card not in self.methods or symbol == local:
             return []
         return [f"{written_name(local)} is {written_name(symbol)} of {card}"]
+
+
+def pressure_words(state: StreamState) -> str:
+    """What stands for a pressure that the file does not state: a pure fluid is then saturated."""
+    return SATURATED if state.fluid.text.kind == "name" else "not stated"
 
 
 def _celsius_note(kind: QuantityKind | None, clean: float | bool, service: float | bool) -> str:

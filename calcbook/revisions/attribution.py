@@ -112,7 +112,9 @@ class Attribution:
         return tuple(sorted(self.parts, key=lambda part: -float(f"{abs(part.part):.9g}")))
 
 
-def attribute(old: Side, new: Side, changes: Sequence[Change], results: Sequence[str]) -> tuple[Attribution, ...]:
+def attribute(
+    old: Side, new: Side, changes: Sequence[Change], results: Sequence[str]
+) -> tuple[Attribution, ...]:
     """The parts of each named result of the base case, over the changes that can move it.
 
     Every result must be one of both sides (``KeyError`` else).
@@ -123,12 +125,22 @@ def attribute(old: Side, new: Side, changes: Sequence[Change], results: Sequence
     found = []
     for name in results:
         was, now = (side.solved.base.results[name] for side in (old, new))
-        found.append(_attribution(name, now.kind, was.value, now.value, values[name], game, shares_of, orders))
+        found.append(
+            _attribution(name, now.kind, was.value, now.value, values[name], game, shares_of, orders)
+        )
     return tuple(found)
 
 
-def _attribution(name: str, kind: QuantityKind, was: float, now: float, values: Array, game: _Game,
-                 shares_of: Callable[[Array], Shares], orders: int) -> Attribution:
+def _attribution(
+    name: str,
+    kind: QuantityKind,
+    was: float,
+    now: float,
+    values: Array,
+    game: _Game,
+    shares_of: Callable[[Array], Shares],
+    orders: int,
+) -> Attribution:
     counts = (game.evaluations, game.structures, orders)
     if not np.isfinite(values).all():
         return Attribution(name, kind, was, now, (), math.nan, math.nan, *counts, has_parts=False)
@@ -138,10 +150,19 @@ def _attribution(name: str, kind: QuantityKind, was: float, now: float, values: 
     for number, block in enumerate(game.blocks):
         figures = [column[number] for column in (shares.part, shares.alone, shares.last, shares.error)]
         if in_resistance is not None:
-            figures += [column[number] for column in (in_resistance.part, in_resistance.alone, in_resistance.last,
-                                                      in_resistance.error)]
+            figures += [
+                column[number]
+                for column in (
+                    in_resistance.part,
+                    in_resistance.alone,
+                    in_resistance.last,
+                    in_resistance.error,
+                )
+            ]
         members = [game.mixer.changes[item] for item in block]
-        parts.append(Part(tuple(item.id for item in members), " with ".join(item.title for item in members), *figures))
+        parts.append(
+            Part(tuple(item.id for item in members), " with ".join(item.title for item in members), *figures)
+        )
     interaction = (now - was) - math.fsum(shares.alone)
     rest = (now - was) - math.fsum(shares.part)
     return Attribution(name, kind, was, now, tuple(parts), interaction, rest, *counts)
@@ -153,7 +174,9 @@ class _Game:
     def __init__(self, mixer: Mixer, results: tuple[str, ...]):
         self.mixer = mixer
         self.results = results
-        self.conditions = tuple(dict.fromkeys(item for name in results for item in conditions_of(name))) or (SERVICE,)
+        self.conditions = tuple(dict.fromkeys(item for name in results for item in conditions_of(name))) or (
+            SERVICE,
+        )
         self.blocks: list[tuple[int, ...]] = [(number,) for number in range(len(mixer.changes))]
         self.evaluations = self.structures = 0
         self.overrides: dict[int, dict[str, float]] = {}
@@ -219,7 +242,11 @@ class _Game:
             touched = [block for block in self.blocks if members & set(block)]
             joined = tuple(sorted(item for block in touched for item in block))
             first = self.blocks.index(touched[0])
-            self.blocks = [*self.blocks[:first], joined, *(block for block in self.blocks[first:] if block not in touched)]
+            self.blocks = [
+                *self.blocks[:first],
+                joined,
+                *(block for block in self.blocks[first:] if block not in touched),
+            ]
 
     def _stands(self, subset: frozenset[int]) -> bool:
         """Whether a subset of the blocks makes a calculation that has an answer."""
@@ -227,7 +254,8 @@ class _Game:
         if chain is None:
             return False
         return has_sound_states(chain) and all(
-            bool(np.isfinite(self._solved(chain, {}, 1, condition)[1]).all()) for condition in self.conditions)
+            bool(np.isfinite(self._solved(chain, {}, 1, condition)[1]).all()) for condition in self.conditions
+        )
 
     def _changes(self, subset: Iterable[int]) -> frozenset[int]:
         return frozenset(item for block in subset for item in self.blocks[block])
@@ -273,8 +301,10 @@ class _Game:
             if len(subsets) == 1:
                 return {}, np.zeros(1, dtype=bool)
         parts = [self._of_structure(chain, half) for half in np.array_split(subsets, 2)]
-        columns = {name: np.concatenate([part[0].get(name, np.full(len(part[1]), np.nan)) for part in parts])
-                   for name in self.results}
+        columns = {
+            name: np.concatenate([part[0].get(name, np.full(len(part[1]), np.nan)) for part in parts])
+            for name in self.results
+        }
         return columns, np.concatenate([part[1] for part in parts])
 
     def _of_samples(self, chain: Chain, subsets: Array) -> tuple[dict[str, Array], Array]:
@@ -295,7 +325,9 @@ class _Game:
             values[name] = np.broadcast_to(figures if figures is not None else np.nan, (count,))
         return values, good
 
-    def _solved(self, chain: Chain, inputs: dict[str, Array], count: int, condition: str) -> tuple[Solution, Array]:
+    def _solved(
+        self, chain: Chain, inputs: dict[str, Array], count: int, condition: str
+    ) -> tuple[Solution, Array]:
         """A solution, and U for every sample: NaN where there is no answer."""
         solution = solve(chain, {**chain.case_inputs(""), **inputs}, condition)
         coefficient = np.broadcast_to(np.asarray(solution.values[chain.results["U"]], dtype=float), (count,))
@@ -356,9 +388,14 @@ class _Sample:
         pairs = 0.5 * (steps[0::2] + steps[1::2])
         error = pairs.std(axis=0, ddof=1) / math.sqrt(len(pairs))
         nothing, everything = frozenset[int](), frozenset(range(self.count))
-        alone = [float(values[self.rows[frozenset((number,))]] - values[self.rows[nothing]]) for number in range(self.count)]
-        last = [float(values[self.rows[everything]] - values[self.rows[everything - {number}]])
-                for number in range(self.count)]
+        alone = [
+            float(values[self.rows[frozenset((number,))]] - values[self.rows[nothing]])
+            for number in range(self.count)
+        ]
+        last = [
+            float(values[self.rows[everything]] - values[self.rows[everything - {number}]])
+            for number in range(self.count)
+        ]
         mean = tuple(math.fsum(pairs[:, number].tolist()) / len(pairs) for number in range(self.count))
         return Shares(mean, tuple(alone), tuple(last), tuple(error.tolist()))
 
@@ -368,4 +405,3 @@ def _pair(count: int, pair: int) -> tuple[tuple[int, ...], tuple[int, ...]]:
     keys = [sha256(f"{SEED} / {pair} / {number}".encode()).digest() for number in range(count)]
     order = tuple(sorted(range(count), key=keys.__getitem__))
     return order, order[::-1]
-

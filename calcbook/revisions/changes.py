@@ -7,7 +7,7 @@ that make it in the old file's tree, so that any subset of changes can be read a
 from __future__ import annotations
 
 from collections.abc import Callable, Iterable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from hashlib import sha256
 
 from calcbook.calcfile.meaning import meaning_of
@@ -20,8 +20,22 @@ from calcbook.revisions.sides import Side
 # Changes that leave every number as it was; they are listed apart from the changed inputs.
 APART = ("source only", "unit only", "text only")
 # Keys that say in which way a term resists: where one comes or goes, the whole term is one change.
-WAY = frozenset(("kind", "parallel", "stream", "coefficient", "resistance", "material", "conductivity", "deposit",
-                 "thickness", "outside diameter"))
+WAY = frozenset(
+    (
+        "kind",
+        "parallel",
+        "stream",
+        "coefficient",
+        "resistance",
+        "material",
+        "conductivity",
+        "deposit",
+        "thickness",
+        "outside diameter",
+    )
+)
+# What stands beside the figure of a given and moves no result, with the words for it.
+BESIDE = {"tolerance": "tolerance", "is": "meaning", "from": "taken from"}
 NOT_STATED = "not stated"
 ORDER = "resistances/order of terms"
 
@@ -102,7 +116,9 @@ def item_name(item: Node, section: str) -> str:
         return " beside ".join(entries_of(item.get("parallel"), "parallel"))
     if section == "acceptance":
         words = text_of(item.get("that")).split()
-        return " ".join(words[: next((at + 1 for at, word in enumerate(words) if word[0] in "<>"), len(words))])
+        return " ".join(
+            words[: next((at + 1 for at, word in enumerate(words) if word[0] in "<>"), len(words))]
+        )
     keys = {"accept": ("check", "in"), "revisions": ("revision",)}.get(section, ())
     return ", ".join(text_of(item.get(key)) for key in keys if item.get(key) is not None)
 
@@ -139,7 +155,9 @@ def figure_of(node: Node | None) -> Figure | None:
     if isinstance(node, Mapping):
         scalar = node.get("value")
         source = text_of(node.get("source"))
-        beside = {key.text: meaning_of(value) for key, value in node.entries if key.text not in ("value", "source")}
+        beside = {
+            key.text: meaning_of(value) for key, value in node.entries if key.text not in ("value", "source")
+        }
     if not isinstance(scalar, Scalar):
         return None
     try:
@@ -166,11 +184,20 @@ class _Differences:
 
     def found(self) -> tuple[Change, ...]:
         sections: tuple[tuple[str, Callable[[str], None]], ...] = (
-            ("calculation", self._texts), ("purpose", self._text), ("revisions", self._statements),
-            ("givens", self._givens), ("derived", self._derived), ("assumptions", self._assumptions),
-            ("fluids", self._fluids), ("streams", self._streams), ("geometry", self._geometry),
-            ("resistances", self._terms), ("acceptance", self._statements), ("report", self._report),
-            ("cases", self._cases), ("accept", self._statements),
+            ("calculation", self._texts),
+            ("purpose", self._text),
+            ("revisions", self._statements),
+            ("givens", self._givens),
+            ("derived", self._derived),
+            ("assumptions", self._assumptions),
+            ("fluids", self._fluids),
+            ("streams", self._streams),
+            ("geometry", self._geometry),
+            ("resistances", self._terms),
+            ("acceptance", self._statements),
+            ("report", self._report),
+            ("cases", self._cases),
+            ("accept", self._statements),
         )
         for name, read in sections:
             read(name)
@@ -182,11 +209,14 @@ class _Differences:
 
     def _roots(self, section: str) -> tuple[Node | None, Node | None]:
         old, new = self.old.tree, self.new.tree
-        return (old.get(section) if isinstance(old, Mapping) else None,
-                new.get(section) if isinstance(new, Mapping) else None)
+        return (
+            old.get(section) if isinstance(old, Mapping) else None,
+            new.get(section) if isinstance(new, Mapping) else None,
+        )
 
-    def _pairs(self, old: Node | None, new: Node | None, section: str
-               ) -> Iterable[tuple[str, Scalar | None, Node | None, Node | None]]:
+    def _pairs(
+        self, old: Node | None, new: Node | None, section: str
+    ) -> Iterable[tuple[str, Scalar | None, Node | None, Node | None]]:
         """Names of both sides in the order of the file, with the new key and both nodes, where they differ."""
         before, after = entries_of(old, section), entries_of(new, section)
         for name in merged(before, after):
@@ -195,19 +225,47 @@ class _Differences:
             if was is None or now is None or meaning_of(was) != meaning_of(now):
                 yield name, key, was, now
 
-    def _add(self, path: tuple[str, ...], kind: str, title: str, old: Node | None, new: Node | None,
-             key: Scalar | None = None, moves: bool = True) -> None:
+    def _add(
+        self,
+        path: tuple[str, ...],
+        kind: str,
+        title: str,
+        old: Node | None,
+        new: Node | None,
+        key: Scalar | None = None,
+        moves: bool = True,
+    ) -> None:
         """One change of a node as a whole."""
         was, now = _differing(old, new)
         if kind not in ("criterion", "accept", "text only"):
             kind = "added" if old is None else "removed" if new is None else kind
         edits = (Edit(path, new, key),) if moves else ()
         one, two = figure_of(old), figure_of(new)
-        self.changes.append(Change("/".join(path), kind, path, title, was or NOT_STATED, now or NOT_STATED,
-                                   one.source if one else "", two.source if two else "", edits, moves))
+        self.changes.append(
+            Change(
+                "/".join(path),
+                kind,
+                path,
+                title,
+                was or NOT_STATED,
+                now or NOT_STATED,
+                one.source if one else "",
+                two.source if two else "",
+                edits,
+                moves,
+            )
+        )
 
-    def _figure(self, path: tuple[str, ...], kind: str, title: str, old: Node | None, new: Node | None,
-                key: Scalar | None = None, moves: bool = True) -> None:
+    def _figure(
+        self,
+        path: tuple[str, ...],
+        kind: str,
+        title: str,
+        old: Node | None,
+        new: Node | None,
+        key: Scalar | None = None,
+        moves: bool = True,
+    ) -> None:
         """One change of a figure; of its source or unit alone, where the number is as it was."""
         one, two = figure_of(old), figure_of(new)
         if one is None or two is None or one.beside != two.beside:
@@ -218,18 +276,52 @@ class _Differences:
         edits = (Edit(path, new, key),)
         if same_number(one, two):
             kind, moves, edits = _apart_kind(one, two), False, ()
-        alike = (one.quantity is not None and two.quantity is not None
-                 and one.quantity.dimension == two.quantity.dimension)
-        self.changes.append(Change("/".join(path), kind, path, title, one.text, two.text, one.source, two.source,
-                                   edits if moves else (), moves, one.quantity if alike else None,
-                                   two.quantity if alike else None))
+        alike = (
+            one.quantity is not None
+            and two.quantity is not None
+            and one.quantity.dimension == two.quantity.dimension
+        )
+        self.changes.append(
+            Change(
+                "/".join(path),
+                kind,
+                path,
+                title,
+                one.text,
+                two.text,
+                one.source,
+                two.source,
+                edits if moves else (),
+                moves,
+                one.quantity if alike else None,
+                two.quantity if alike else None,
+            )
+        )
 
-    def _whole(self, path: tuple[str, ...], kind: str, title: str, old: Node | None, new: Node | None,
-               key: Scalar | None, moves: bool) -> None:
+    def _whole(
+        self,
+        path: tuple[str, ...],
+        kind: str,
+        title: str,
+        old: Node | None,
+        new: Node | None,
+        key: Scalar | None,
+        moves: bool,
+    ) -> None:
         """A figure that is no longer one, or one that came or went: the key is a change, not the entry."""
         was, now = _differing(old, new)
-        self.changes.append(Change("/".join(path), kind, path, title, was or NOT_STATED, now or NOT_STATED,
-                                   edits=(Edit(path, new, key),) if moves else (), moves=moves))
+        self.changes.append(
+            Change(
+                "/".join(path),
+                kind,
+                path,
+                title,
+                was or NOT_STATED,
+                now or NOT_STATED,
+                edits=(Edit(path, new, key),) if moves else (),
+                moves=moves,
+            )
+        )
 
     # -- title, purpose, statements -----------------------------------------------------------------
 
@@ -243,8 +335,11 @@ class _Differences:
             self._add((section,), "text only", section, old, new, moves=False)
 
     def _statements(self, section: str) -> None:
-        kinds = {"revisions": ("text only", "revision history, "), "acceptance": ("criterion", "criterion "),
-                 "accept": ("accept", "accepted check ")}
+        kinds = {
+            "revisions": ("text only", "revision history, "),
+            "acceptance": ("criterion", "criterion "),
+            "accept": ("accept", "accepted check "),
+        }
         kind, title = kinds[section]
         for name, key, old, new in self._pairs(*self._roots(section), section):
             self._add((section, name), kind, f"{title}{name}", old, new, key, moves=False)
@@ -255,8 +350,15 @@ class _Differences:
                 self._add((section, name), "assumption", f"assumption {name}", old, new, key, moves=False)
                 continue
             for part, part_key, was, now in self._pairs(old, new, name):
-                self._whole((section, name, part), "assumption", f"assumption {name}, {part}", was, now, part_key,
-                            moves=False)
+                self._whole(
+                    (section, name, part),
+                    "assumption",
+                    f"assumption {name}, {part}",
+                    was,
+                    now,
+                    part_key,
+                    moves=False,
+                )
 
     # -- givens and derived -------------------------------------------------------------------------
 
@@ -267,21 +369,27 @@ class _Differences:
                 continue
             self._given((section, name), name, key, old, new)
 
-    def _given(self, path: tuple[str, ...], name: str, key: Scalar | None, old: Mapping, new: Mapping) -> None:
+    def _given(
+        self, path: tuple[str, ...], name: str, key: Scalar | None, old: Mapping, new: Mapping
+    ) -> None:
         title = _given_title(name, new)
         count = len(self.changes)
-        self._figure(path, "given", title, _without(old, "is", "tolerance"), _without(new, "is", "tolerance"), key)
+        self._figure(path, "given", title, _without(old, *BESIDE), _without(new, *BESIDE), key)
         if len(self.changes) > count and self.changes[-1].moves:
             self.changes[-1] = _with_edit(self.changes[-1], Edit(path, new, key))
-        for part, kind in (("tolerance", "given"), ("is", "text only")):
+        for part, words in BESIDE.items():
             was, now = old.get(part), new.get(part)
             if _meaning(was) != _meaning(now):
-                self._whole((*path, part), kind, f"{name}, {'meaning' if part == 'is' else part}", was, now, None, False)
+                kind = "text only" if part == "is" else "given"
+                self._whole((*path, part), kind, f"{name}, {words}", was, now, None, False)
 
     def _derived(self, section: str) -> None:
         for name, key, old, new in self._pairs(*self._roots(section), section):
-            only_text = isinstance(old, Mapping) and isinstance(new, Mapping) and _meaning(
-                old.get("relation")) == _meaning(new.get("relation"))
+            only_text = (
+                isinstance(old, Mapping)
+                and isinstance(new, Mapping)
+                and _meaning(old.get("relation")) == _meaning(new.get("relation"))
+            )
             kind = "text only" if only_text else "derived"
             self._add((section, name), kind, f"{name}, derived", old, new, key, moves=not only_text)
 
@@ -291,7 +399,9 @@ class _Differences:
         for name, key, old, new in self._pairs(*self._roots(section), section):
             self._fluid((section, name), f"fluid {name}", old, new, key)
 
-    def _fluid(self, path: tuple[str, ...], title: str, old: Node | None, new: Node | None, key: Scalar | None) -> None:
+    def _fluid(
+        self, path: tuple[str, ...], title: str, old: Node | None, new: Node | None, key: Scalar | None
+    ) -> None:
         if isinstance(old, Mapping) and isinstance(new, Mapping):
             if _meaning(_without(old, "source")) == _meaning(_without(new, "source")):
                 self._source(path, title, old, new)
@@ -299,7 +409,9 @@ class _Differences:
             differing = [name for name, *_ in self._pairs(old, new, "fluid")]
             if len(differing) == 1 and differing[0] in ("mass fraction", "volume fraction"):
                 part = differing[0]
-                self._figure((*path, part), "stream", f"{title}, {part}", old.get(part), new.get(part), new.key(part))
+                self._figure(
+                    (*path, part), "stream", f"{title}, {part}", old.get(part), new.get(part), new.key(part)
+                )
                 return
         self._add(path, "fluid", title, old, new, key)
 
@@ -337,10 +449,21 @@ class _Differences:
         common_before = [name for name in before if name in after]
         common_after = [name for name in after if name in before]
         if common_before != common_after:
-            self.changes.append(Change(ORDER, "term", (section,), "order of the terms", ", ".join(common_before),
-                                       ", ".join(common_after), moves=True))
+            self.changes.append(
+                Change(
+                    ORDER,
+                    "term",
+                    (section,),
+                    "order of the terms",
+                    ", ".join(common_before),
+                    ", ".join(common_after),
+                    moves=True,
+                )
+            )
 
-    def _term(self, path: tuple[str, ...], name: str, old: Node | None, new: Node | None, key: Scalar | None) -> None:
+    def _term(
+        self, path: tuple[str, ...], name: str, old: Node | None, new: Node | None, key: Scalar | None
+    ) -> None:
         title = f"term {name}"
         if not isinstance(old, Mapping) or not isinstance(new, Mapping):
             self._add(path, "term", title, old, new, key)
@@ -352,8 +475,15 @@ class _Differences:
         for part, part_key, was, now in self._pairs(old, new, name):
             self._term_part((*path, part), f"{name}, {part}", part, was, now, part_key)
 
-    def _term_part(self, path: tuple[str, ...], title: str, part: str, old: Node | None, new: Node | None,
-                   key: Scalar | None) -> None:
+    def _term_part(
+        self,
+        path: tuple[str, ...],
+        title: str,
+        part: str,
+        old: Node | None,
+        new: Node | None,
+        key: Scalar | None,
+    ) -> None:
         both = isinstance(old, Mapping | Sequence) and isinstance(new, Mapping | Sequence)
         if part == "parallel" and both:
             for name, _, was, now in self._pairs(old, new, part):
@@ -374,7 +504,15 @@ class _Differences:
                 self._add((section, name), "case", f"case {name}", old, new, key, moves=False)
                 continue
             for symbol, inner_key, was, now in self._pairs(old, new, section):
-                self._figure((section, name, symbol), "case", f"case {name}, {symbol}", was, now, inner_key, moves=False)
+                self._figure(
+                    (section, name, symbol),
+                    "case",
+                    f"case {name}, {symbol}",
+                    was,
+                    now,
+                    inner_key,
+                    moves=False,
+                )
 
     def _book(self) -> None:
         was, now = self.old.calculation.settings, self.new.calculation.settings
@@ -383,15 +521,39 @@ class _Differences:
             texts = [(value.text, value.source) if value is not None else None for value in (one, two)]
             if texts[0] == texts[1]:
                 continue
-            figures = [Figure(value.text, value.source, value.quantity, {}) if value else None for value in (one, two)]
+            figures = [
+                Figure(value.text, value.source, value.quantity, {}) if value else None
+                for value in (one, two)
+            ]
             same = figures[0] is not None and figures[1] is not None and same_number(figures[0], figures[1])
-            kind = _apart_kind(figures[0], figures[1]) if same and figures[0] and figures[1] else "book setting"
+            kind = (
+                _apart_kind(figures[0], figures[1]) if same and figures[0] and figures[1] else "book setting"
+            )
             shown = [figure or Figure(NOT_STATED, "", None, {}) for figure in figures]
-            self.changes.append(Change(f"book/{name}", kind, ("book", name), f"book, {name}", shown[0].text, shown[1].text,
-                                       shown[0].source, shown[1].source, moves=name == "site pressure" and not same))
+            self.changes.append(
+                Change(
+                    f"book/{name}",
+                    kind,
+                    ("book", name),
+                    f"book, {name}",
+                    shown[0].text,
+                    shown[1].text,
+                    shown[0].source,
+                    shown[1].source,
+                    moves=name == "site pressure" and not same,
+                )
+            )
         if was.units != now.units:
-            self.changes.append(Change("book/units", "book setting", ("book", "units"), "book, units",
-                                       was.units or NOT_STATED, now.units or NOT_STATED))
+            self.changes.append(
+                Change(
+                    "book/units",
+                    "book setting",
+                    ("book", "units"),
+                    "book, units",
+                    was.units or NOT_STATED,
+                    now.units or NOT_STATED,
+                )
+            )
 
     def _cards(self) -> None:
         """House cards of one name with another content. The cards of calcbook are the same on both sides."""
@@ -401,15 +563,27 @@ class _Differences:
         for name in merged(self.old.solved.cards, self.new.solved.cards):
             was, now = (card_text(library, name) for library in libraries)
             if was is not None and now is not None and was != now:
-                self.changes.append(Change(f"card/{name}", "card", ("card", name), f"house card, {name}",
-                                           f"content {_short(was)}", f"content {_short(now)}", moves=True))
+                self.changes.append(
+                    Change(
+                        f"card/{name}",
+                        "card",
+                        ("card", name),
+                        f"house card, {name}",
+                        f"content {_short(was)}",
+                        f"content {_short(now)}",
+                        moves=True,
+                    )
+                )
 
 
 def card_text(library: Library, name: str) -> str | None:
     """What a digest binds of a card, by the name under which a calculation lists it; None where there is none."""
     kind, _, card = name.partition(" ")
-    find: dict[str, Callable[[str], object]] = {"method": library.method, "situation": library.situation,
-                                                "material": library.material}
+    find: dict[str, Callable[[str], object]] = {
+        "method": library.method,
+        "situation": library.situation,
+        "material": library.material,
+    }
     try:
         return str(find[kind](card).digest_text)  # type: ignore[attr-defined]
     except (Faults, KeyError):
@@ -433,12 +607,12 @@ def _meaning(node: Node | None) -> object:
 
 
 def _without(node: Mapping, *names: str) -> Mapping:
-    return Mapping(tuple(entry for entry in node.entries if entry[0].text not in names), node.place, node.in_braces)
+    return Mapping(
+        tuple(entry for entry in node.entries if entry[0].text not in names), node.place, node.in_braces
+    )
 
 
 def _with_edit(change: Change, edit: Edit) -> Change:
-    from dataclasses import replace
-
     return replace(change, edits=(edit,))
 
 

@@ -9,7 +9,7 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from calcbook.chain.outcome import Result, Solved
-from calcbook.chain.types import RunnerAssumption
+from calcbook.chain.types import Group, RunnerAssumption
 from calcbook.documents import Description, Fields, Key, Node, read_file, read_mapping
 from calcbook.documents import Sequence as SequenceNode
 from calcbook.faults import Collector, Fault, Faults, Place, shown
@@ -151,7 +151,8 @@ def _identity(solved: Solved, role: str, person: str) -> Iterable[str]:
 
 def blind_results(solved: Solved) -> tuple[str, ...]:
     """The results that may be found by hand: h of each film that a method gives, and U."""
-    films = [row.name for row in solved.base.terms["service"] if row.methods]
+    films = [element.name for element in solved.chain.elements
+             if isinstance(element, Group) and any(branch.situation is not None for branch in element.branches)]
     names = [f"h {film} {condition}" for film in films for condition in ("service", "clean")]
     return tuple(name for name in (*names, "U_service", "U_clean") if name in solved.base.results)
 

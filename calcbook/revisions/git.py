@@ -44,7 +44,9 @@ class Commit:
 
         Paths from the folder, those above it left out, in alphabetical order.
         """
-        known = _git(self.folder, "diff", "--name-only", "-z", "--relative", "--no-ext-diff", self.digits, "--", ".")
+        known = _git(
+            self.folder, "diff", "--name-only", "-z", "--relative", "--no-ext-diff", self.digits, "--", "."
+        )
         fresh = _git(self.folder, "ls-files", "-z", "--others", "--exclude-standard", "--", ".")
         return tuple(sorted({*_names(known.stdout), *_names(fresh.stdout)}))
 
@@ -53,13 +55,31 @@ def commit_of(folder: Path, revision: str) -> Commit:
     """The commit that a revision names. Raises ``Faults``: git-not-available, git-revision-unknown."""
     place = Place(f"git:{shown(revision)}")
     if not _REVISION.fullmatch(revision):
-        raise Faults([Fault("git-revision-unknown", place, "this cannot be a revision of git", shown(revision),
-                            "a branch, a tag or the digits of a commit")])
+        raise Faults(
+            [
+                Fault(
+                    "git-revision-unknown",
+                    place,
+                    "this cannot be a revision of git",
+                    shown(revision),
+                    "a branch, a tag or the digits of a commit",
+                )
+            ]
+        )
     finished = _git(folder, "rev-parse", "--verify", "--quiet", f"{revision}^{{commit}}")
     digits = finished.stdout.decode("ascii", "replace").strip()
     if finished.returncode != 0 or not re.fullmatch(r"[0-9a-f]{40,64}", digits):
-        raise Faults([Fault("git-revision-unknown", place, "git does not know this revision here", shown(revision),
-                            "a branch, a tag or the digits of a commit; in a shallow clone, fetch its history first")])
+        raise Faults(
+            [
+                Fault(
+                    "git-revision-unknown",
+                    place,
+                    "git does not know this revision here",
+                    shown(revision),
+                    "a branch, a tag or the digits of a commit; in a shallow clone, fetch its history first",
+                )
+            ]
+        )
     return Commit(folder, revision, digits)
 
 
@@ -74,8 +94,17 @@ def _names(output: bytes) -> list[str]:
 
 def _git(folder: Path, *arguments: str) -> subprocess.CompletedProcess[bytes]:
     try:
-        return subprocess.run(["git", "-C", str(folder), *arguments], capture_output=True, check=False,
-                              stdin=subprocess.DEVNULL)
+        return subprocess.run(
+            ["git", "-C", str(folder), *arguments], capture_output=True, check=False, stdin=subprocess.DEVNULL
+        )
     except OSError:
-        raise Faults([Fault("git-not-available", Place("git"), "git cannot be started here",
-                            expected="git on the path of programs")]) from None
+        raise Faults(
+            [
+                Fault(
+                    "git-not-available",
+                    Place("git"),
+                    "git cannot be started here",
+                    expected="git on the path of programs",
+                )
+            ]
+        ) from None

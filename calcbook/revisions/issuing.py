@@ -14,7 +14,15 @@ from calcbook.faults import Collector, Fault, Faults
 from calcbook.interface import HOUSE_CARDS
 from calcbook.library import ROOT as BUILT_IN
 from calcbook.record import digest_of, record_text, results_text, software_of
-from calcbook.revisions.lifecycle import VALID, Lifecycle, changes_of, life_from, lifecycle_of, with_issue
+from calcbook.revisions.lifecycle import (
+    VALID,
+    Lifecycle,
+    changes_of,
+    life_from,
+    lifecycle_of,
+    unwritten_reasons,
+    with_issue,
+)
 from calcbook.revisions.seals import (
     BOOK,
     CALCULATION,
@@ -93,13 +101,13 @@ def _check_signoffs(work: Work, lifecycle: Lifecycle, date: datetime.date, preli
 
 
 def _check_open_items(work: Work, lifecycle: Lifecycle, preliminary: bool, collector: Collector) -> None:
-    if preliminary and work.solved.chain.calculation.settings.open_items != REFUSE_ANY:
-        return
-    for item in lifecycle.open_items:
-        collector.add("issue-open-item", work.place, f"open item {item.id}: {item.text}",
-                      expected="the item closed" if preliminary or
-                      work.solved.chain.calculation.settings.open_items == REFUSE_ANY else
-                      "the item closed, or an issue as preliminary")
+    """A preliminary issue may have open items where the book lets it, but never a reason that is to be written."""
+    calculation = work.solved.chain.calculation
+    lets_pass = preliminary and calculation.settings.open_items != REFUSE_ANY
+    cure = "the item closed" if preliminary or calculation.settings.open_items == REFUSE_ANY else \
+        "the item closed, or a preliminary issue"
+    for item in unwritten_reasons(calculation) if lets_pass else lifecycle.open_items:
+        collector.add("issue-open-item", work.place, f"open item {item.id}: {item.text}", expected=cure)
 
 
 # --- the copy ---------------------------------------------------------------------------------------

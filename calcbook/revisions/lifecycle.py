@@ -125,13 +125,16 @@ def _unsolved(calc_path: Path, output: Path) -> Lifecycle:
 
 def open_items_of(solved: Solved) -> tuple[OpenItem, ...]:
     """The open items of every case, and those of the revision history: a reason that is still to be written."""
-    found = {item.id: item for item in solved.open_items}
-    for revision in solved.chain.calculation.revisions:
-        if revision.reason.casefold().strip(" .…") in (TO_BE_WRITTEN, "tbd", ""):
-            name = f"revision {revision.revision} / reason"
-            found.setdefault(name, OpenItem(name, "revision", f"The reason of revision {revision.revision} is to be"
-                                                              " written."))
+    found = {item.id: item for item in (*solved.open_items, *unwritten_reasons(solved.chain.calculation))}
     return tuple(found.values())
+
+
+def unwritten_reasons(calculation: Calculation) -> tuple[OpenItem, ...]:
+    """An open item for each line of the revision history whose reason is still to be written."""
+    return tuple(OpenItem(f"revision {item.revision} / reason", "revision",
+                          f"The reason of revision {item.revision} is to be written.")
+                 for item in calculation.revisions
+                 if item.reason.casefold().strip(" .…") in (TO_BE_WRITTEN, "tbd", ""))
 
 
 def _state(judged: Sequence[Judged], settings: Settings, copies: Sequence[Issued], issued: Issued | None,
@@ -242,7 +245,14 @@ def life_of(calc_path: Path, solved: Solved, output: Path) -> Life:
 def life_from(lifecycle: Lifecycle, settings: Settings, changes: tuple[Block, ...] = ()) -> Life:
     """The lines of the record from a lifecycle that is known."""
     lines = tuple(_line(item, settings) for item in lifecycle.signoffs)
-    return Life(lifecycle.state, lines, issue_words(lifecycle), _notice(lifecycle), changes)
+    return Life(lifecycle.state, lines, issue_words(lifecycle), _notice(lifecycle), changes, _answers(lifecycle, settings))
+
+
+def _answers(lifecycle: Lifecycle, settings: Settings) -> tuple[tuple[int, str], ...]:
+    """The words of valid sign-offs to the questions that only a person can answer, with who says so."""
+    return tuple((int(answer.number), f"{printed_name(settings, entry.person)}: {answer.answer}")
+                 for item in lifecycle.signoffs if item.validity == VALID and (entry := item.signoff) is not None
+                 for answer in entry.answers if answer.number.isdecimal())
 
 
 def _line(item: Judged, settings: Settings) -> SignOffLine:

@@ -66,7 +66,9 @@ class Mixer:
         self.new = new
         self.changes = tuple(changes)
         self.root = _trimmed(old.tree)
-        before, after = (list(entries_of(_section(side.tree, "resistances"), "resistances")) for side in (old, new))
+        before, after = (
+            list(entries_of(_section(side.tree, "resistances"), "resistances")) for side in (old, new)
+        )
         self.orders = {False: woven(before, after, before), True: woven(before, after, after)}
         self.house = any(side.solved.chain.library.house is not None for side in (old, new))
         self._chains: dict[frozenset[int], Chain | None] = {}
@@ -94,7 +96,7 @@ class Mixer:
             for edit in change.edits:
                 root = _edited(root, edit.path, edit)
         order = self.orders[any(change.id == ORDER for change in chosen)]
-        return _in_order(root, order)
+        return unlinked(_in_order(root, order))
 
     def _settings(self, chosen: Sequence[Change]) -> Settings:
         settings = self.old.calculation.settings
@@ -113,7 +115,9 @@ def moved_inputs(before: Chain, after: Chain) -> dict[str, float] | None:
     """Inputs that differ between two chains, by id with the later value; None where the structure differs."""
     if before.inputs.keys() != after.inputs.keys() or structure_of(before) != structure_of(after):
         return None
-    return {name: item.value for name, item in after.inputs.items() if item.value != before.inputs[name].value}
+    return {
+        name: item.value for name, item in after.inputs.items() if item.value != before.inputs[name].value
+    }
 
 
 def has_sound_states(chain: Chain) -> bool:
@@ -174,7 +178,9 @@ def _edited(node: Node, path: tuple[str, ...], edit: Edit, section: str = "") ->
             entries.append((key, after))
     if not found and edit.node is not None:
         after = _edited(_empty(name, edit.node), rest, edit, name) if rest else edit.node
-        entries.append((edit.key if edit.key is not None and not rest else Scalar(name, edit.node.place), after))
+        entries.append(
+            (edit.key if edit.key is not None and not rest else Scalar(name, edit.node.place), after)
+        )
     return Mapping(tuple(entries), node.place, node.in_braces)
 
 
@@ -205,10 +211,33 @@ def _in_order(root: Node, order: Sequence[str]) -> Node:
     entries = []
     for key, value in root.entries:
         if key.text == "resistances" and isinstance(value, ListNode):
-            items = sorted(value.items, key=lambda item: places.get(item_name(item, "resistances"), len(places)))
+            items = sorted(
+                value.items, key=lambda item: places.get(item_name(item, "resistances"), len(places))
+            )
             value = ListNode(tuple(items), value.place)
         entries.append((key, value))
     return Mapping(tuple(entries), root.place, root.in_braces)
+
+
+def unlinked(root: Node) -> Node:
+    """The tree without the links of its givens: their values are written out."""
+    assert isinstance(root, Mapping)
+    entries = []
+    for key, value in root.entries:
+        if key.text == "givens" and isinstance(value, Mapping):
+            givens = tuple(
+                (name, _without(given, "from") if isinstance(given, Mapping) else given)
+                for name, given in value.entries
+            )
+            value = Mapping(givens, value.place)
+        entries.append((key, value))
+    return Mapping(tuple(entries), root.place)
+
+
+def _without(node: Mapping, name: str) -> Mapping:
+    return Mapping(
+        tuple(entry for entry in node.entries if entry[0].text != name), node.place, node.in_braces
+    )
 
 
 # --- structure --------------------------------------------------------------------------------------
@@ -219,11 +248,20 @@ def structure_of(chain: Chain) -> tuple[object, ...]:
 
     Fluids and cards are not part of it: a change of either is told by its kind.
     """
-    constants = tuple((name, repr(value) if isinstance(value, float) else getattr(value, "id", type(value).__name__))
-                      for name, value in sorted(chain.constants.items()))
+    constants = tuple(
+        (name, repr(value) if isinstance(value, float) else getattr(value, "id", type(value).__name__))
+        for name, value in sorted(chain.constants.items())
+    )
     surfaces = tuple((surface.name, surface.area, surface.diameter) for surface in chain.surfaces)
-    return (_steps(chain.steps), _steps(chain.circuit), tuple(_element(item) for item in chain.elements), surfaces,
-            chain.basis, constants, tuple(chain.results.items()))
+    return (
+        _steps(chain.steps),
+        _steps(chain.circuit),
+        tuple(_element(item) for item in chain.elements),
+        surfaces,
+        chain.basis,
+        constants,
+        tuple(chain.results.items()),
+    )
 
 
 def _steps(steps: Sequence[ChainStep]) -> tuple[object, ...]:
@@ -234,17 +272,42 @@ def _operation(operation: Operation) -> tuple[object, ...]:
     inner = getattr(operation, "operation", operation)
     relation = getattr(inner, "relation", None)
     marks = ("property", "phase", "has_pressure", "has_fraction", "keeps_phase", "column")
-    return (type(operation).__name__, relation.text if relation is not None else "",
-            *(getattr(inner, mark, "") for mark in marks))
+    return (
+        type(operation).__name__,
+        relation.text if relation is not None else "",
+        *(getattr(inner, mark, "") for mark in marks),
+    )
 
 
 def _element(element: Element) -> tuple[object, ...]:
     if isinstance(element, Layer):
-        return (element.name, element.kind, element.surface, element.resistance, _steps(element.steps), element.material)
+        return (
+            element.name,
+            element.kind,
+            element.surface,
+            element.resistance,
+            _steps(element.steps),
+            element.material,
+        )
     branches = tuple(
-        (branch.name, branch.kind, branch.reference, _steps(branch.choice_steps),
-         tuple((row.relation.text if row.relation is not None else "", tuple(row.inputs.items()), row.candidate)
-               for row in branch.choice),
-         tuple((candidate.method.id, candidate.coefficient, _steps(candidate.steps)) for candidate in branch.candidates))
-        for branch in element.branches)
+        (
+            branch.name,
+            branch.kind,
+            branch.reference,
+            _steps(branch.choice_steps),
+            tuple(
+                (
+                    row.relation.text if row.relation is not None else "",
+                    tuple(row.inputs.items()),
+                    row.candidate,
+                )
+                for row in branch.choice
+            ),
+            tuple(
+                (candidate.method.id, candidate.coefficient, _steps(candidate.steps))
+                for candidate in branch.candidates
+            ),
+        )
+        for branch in element.branches
+    )
     return (element.name, element.side, element.surface, element.bulk, branches)

@@ -72,7 +72,9 @@ def _interface(chain: Chain, solution: Solution, name: str) -> Array | None:
             temperature = _value(solution, element.second_temperature)
         else:
             area = _value(solution, chain.surfaces[element.surface].area)
-            temperature = temperature - _value(solution, "solution/Q") * _value(solution, element.resistance) / area
+            temperature = (
+                temperature - _value(solution, "solution/Q") * _value(solution, element.resistance) / area
+            )
         if name == f"{element.name} to {following.name}":
             return temperature
     return None

@@ -8,7 +8,7 @@ import shutil
 import tempfile
 import weakref
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 
 from calcbook.calcfile import BOOK_FILE, Calculation, read_settings
@@ -20,8 +20,8 @@ from calcbook.faults import Collector, Fault, Faults, Place, nearest_names, show
 from calcbook.interface import HOUSE_CARDS, solve_file
 from calcbook.record import Digest, digest_of
 from calcbook.revisions.git import Commit, commit_of
+from calcbook.revisions.seals import CALCULATION, RESULTS, issued_copies, issued_folder, read_seal
 
-ISSUED, SEAL, RESULTS, ISSUED_FILE = "issued", "seal.json", "results.json", "calculation.yaml"
 OUTPUT = "output"
 _ISSUED_COPY = re.compile(r"([A-Za-z0-9][A-Za-z0-9_.-]{0,39})@([A-Za-z0-9][A-Za-z0-9.-]{0,9})")
 
@@ -32,7 +32,7 @@ Data = Mapping[str, object]
 class Side:
     """A calculation as one side of a comparison.
 
-    ``document`` is the file as it stood, ``tree`` the same with its table files written out in place.
+    ``document`` is the file as it stood, ``tree`` the same with table files and linked values written out in place.
     ``results`` is the results file that was recorded for this content, None where there is none.
     ``software`` is what that results file was made with (empty without one). ``state`` says how the side
     stands: `issued, final`, `issued, preliminary`, or `not issued`.
@@ -57,8 +57,11 @@ class Side:
         found = (self.results or {}).get("results", {})
         if not isinstance(found, Mapping):
             return {}
-        return {name: float(item["value"]) for name, item in found.items()
-                if isinstance(item, Mapping) and isinstance(item.get("value"), int | float)}
+        return {
+            name: float(item["value"])
+            for name, item in found.items()
+            if isinstance(item, Mapping) and isinstance(item.get("value"), int | float)
+        }
 
 
 def load_side(text: str, folder: Path, output: Path) -> Side:
@@ -79,45 +82,24 @@ def load_side(text: str, folder: Path, output: Path) -> Side:
 
 def load_issued(number: str, revision: str, output: Path) -> Side:
     """The issued copy of a revision. Raises ``Faults``: issued-not-found, and those of ``load_side``."""
-    folder = output / number / ISSUED / revision
-    path = folder / ISSUED_FILE
+    folder = issued_folder(output, number) / revision
     called = f"{number}@{revision}"
-    if not path.is_file():
-        names = issued_revisions(output, number)
-        raise Faults([Fault("issued-not-found", Place(called), f"revision {revision} of {number} is not issued here",
-                            shown(called), ", ".join(f"{number}@{name}" for name in names) or "an issued revision",
-                            nearest_names(revision, names))])
-    kind = (seal_of(folder) or {}).get("kind")
-    side = _solved_side(path, called, f"issued, {kind}" if kind else "issued")
+    if not (folder / CALCULATION).is_file():
+        names = [copy.revision for copy in issued_copies(output, number)]
+        raise Faults(
+            [
+                Fault(
+                    "issued-not-found",
+                    Place(called),
+                    f"revision {revision} of {number} is not issued here",
+                    shown(called),
+                    ", ".join(f"{number}@{name}" for name in names) or "an issued revision",
+                    nearest_names(revision, names),
+                )
+            ]
+        )
+    side = _solved_side(folder / CALCULATION, called, f"issued, {read_seal(folder).kind}")
     return _with_results(side, _read_results(folder / RESULTS))
-
-
-def issued_revisions(output: Path, number: str) -> tuple[str, ...]:
-    """The names of the issued revisions of a number, in alphabetical order."""
-    found = (output / number / ISSUED).glob(f"*/{ISSUED_FILE}")
-    return tuple(sorted(path.parent.name for path in found))
-
-
-def latest_issued(output: Path, number: str) -> str:
-    """The issued revision that no other one supersedes; empty when none is issued.
-
-    Where seals leave more than one, it is the one whose own history has the most lines.
-    """
-    names = issued_revisions(output, number)
-    superseded = {str((seal_of(output / number / ISSUED / name) or {}).get("supersedes", "")) for name in names}
-    open_ended = [name for name in names if name not in superseded] or list(names)
-    return max(open_ended, key=lambda name: (_history(output / number / ISSUED / name), name), default="")
-
-
-def _history(folder: Path) -> int:
-    root = read_file(folder / ISSUED_FILE).root
-    lines = root.get("revisions") if isinstance(root, MappingNode) else None
-    return len(lines.items) if isinstance(lines, Sequence) else 0
-
-
-def seal_of(folder: Path) -> Data | None:
-    """The seal of an issued copy; None without one. Raises ``Faults``: results-unreadable."""
-    return _read_results(folder / SEAL)
 
 
 def output_of(path: Path, output: Path | None) -> Path:
@@ -132,10 +114,19 @@ def output_of(path: Path, output: Path | None) -> Path:
 
 
 def _from_git(text: str, folder: Path) -> Side:
-    _, revision, path = (text.split(":", 2) + ["", ""])[:3]
+    _, revision, path = [*text.split(":", 2), "", ""][:3]
     if not revision or not path:
-        raise Faults([Fault("side-unreadable", Place(shown(text)), "a side in git names a revision and a file",
-                            shown(text), "git:REVISION:path, such as git:HEAD:calcs/wc-101.yaml")])
+        raise Faults(
+            [
+                Fault(
+                    "side-unreadable",
+                    Place(shown(text)),
+                    "a side in git names a revision and a file",
+                    shown(text),
+                    "git:REVISION:path, such as git:HEAD:calcs/wc-101.yaml",
+                )
+            ]
+        )
     return load_from_commit(folder, revision, path)
 
 
@@ -147,14 +138,25 @@ def load_from_commit(folder: Path, revision: str, path: str) -> Side:
     commit = commit_of(here, revision)
     called = f"git:{revision}:{path}"
     if commit.blob(f"{inside}/{whole.name}") is None:
-        raise Faults([Fault("git-file-unknown", Place(called), "the revision has no such file", shown(path),
-                            "a file of that revision, by its path from the working folder")])
+        raise Faults(
+            [
+                Fault(
+                    "git-file-unknown",
+                    Place(called),
+                    "the revision has no such file",
+                    shown(path),
+                    "a file of that revision, by its path from the working folder",
+                )
+            ]
+        )
     keeper = _Kept()
     _take_out(commit, inside, keeper.path, whole.name)
     side = _solved_side(keeper.path / whole.name, called, "not issued", keeper)
     output = read_settings(keeper.path).output or OUTPUT
     recorded = commit.blob(f"{inside}/{output}/{side.calculation.number}/{RESULTS}")
-    return _with_results(side, _json(recorded.decode("utf-8", "replace"), called) if recorded is not None else None)
+    return _with_results(
+        side, _json(recorded.decode("utf-8", "replace"), called) if recorded is not None else None
+    )
 
 
 class _Kept:
@@ -168,7 +170,9 @@ class _Kept:
 def _take_out(commit: Commit, inside: str, target: Path, name: str) -> None:
     """Write the calculation file and what its reading needs beside it into a folder."""
     tables = [item for item in commit.names(inside) if item.lower().endswith(".csv")]
-    cards = [f"{HOUSE_CARDS}/{item}" for item in commit.names(f"{inside}/{HOUSE_CARDS}") if item.endswith(".yaml")]
+    cards = [
+        f"{HOUSE_CARDS}/{item}" for item in commit.names(f"{inside}/{HOUSE_CARDS}") if item.endswith(".yaml")
+    ]
     for item in (name, BOOK_FILE, *tables, *cards):
         data = commit.blob(f"{inside}/{item}")
         if data is not None:
@@ -184,19 +188,31 @@ def _solved_side(path: Path, called: str, state: str, keeper: object = None) -> 
     document = read_file(path, called)
     calculation = solved.chain.calculation
     label = f"{calculation.number}, revision {calculation.revision}"
-    return Side(label, calculation.revision, document, calculation, solved, None, {}, called,
-                _with_tables(document.root, path.parent), digest_of(solved), state, keeper)
+    return Side(
+        label,
+        calculation.revision,
+        document,
+        calculation,
+        solved,
+        None,
+        {},
+        called,
+        _written_out(document.root, path.parent, calculation),
+        digest_of(solved),
+        state,
+        keeper,
+    )
 
 
 def _with_results(side: Side, results: Data | None) -> Side:
     """The side with its recorded results, where they were recorded for this very content."""
-    from dataclasses import replace
-
     digest = (results or {}).get("digest")
     if results is None or not isinstance(digest, Mapping) or digest.get("meaning") != side.digest.meaning:
         return side
     software = results.get("software")
-    versions = {str(name): str(text) for name, text in software.items()} if isinstance(software, Mapping) else {}
+    versions = (
+        {str(name): str(text) for name, text in software.items()} if isinstance(software, Mapping) else {}
+    )
     return replace(side, results=results, software=versions)
 
 
@@ -214,9 +230,36 @@ def _json(text: str, called: str) -> Data:
     except ValueError:
         found = None
     if not isinstance(found, dict):
-        raise Faults([Fault("results-unreadable", Place(called), "this is no results file or seal that was written here",
-                            expected="the file as it was written; take it from git or run again")])
+        raise Faults(
+            [
+                Fault(
+                    "results-unreadable",
+                    Place(called),
+                    "this is no results file that was written here",
+                    expected="the file as it was written; take it from git or run again",
+                )
+            ]
+        )
     return found
+
+
+def _written_out(root: Node, folder: Path, calculation: Calculation) -> Node:
+    """A tree that stands by itself: table files as tables, and the value of every given that is taken from elsewhere."""
+    root = _with_tables(root, folder)
+    givens = root.get("givens") if isinstance(root, MappingNode) else None
+    if not isinstance(root, MappingNode) or not isinstance(givens, MappingNode):
+        return root
+    entries = []
+    for key, value in givens.entries:
+        given = calculation.givens.get(key.text)
+        if given is not None and isinstance(value, MappingNode) and value.get("value") is None:
+            text = (Scalar("value", value.place), Scalar(given.value.text, given.value.place))
+            value = MappingNode((text, *value.entries), value.place)
+        entries.append((key, value))
+    whole = MappingNode(tuple(entries), givens.place)
+    return MappingNode(
+        tuple((key, whole if node is givens else node) for key, node in root.entries), root.place
+    )
 
 
 def _with_tables(root: Node, folder: Path) -> Node:
@@ -225,13 +268,22 @@ def _with_tables(root: Node, folder: Path) -> Node:
         return Sequence(tuple(_with_tables(item, folder) for item in root.items), root.place)
     if not isinstance(root, MappingNode):
         return root
-    entries = []
+    entries: list[tuple[Scalar, Node]] = []
     for key, value in root.entries:
         if key.text == "table file" and isinstance(value, Scalar):
-            columns = read_table_file(folder / value.text, value.place, Collector())
-            table = tuple((Scalar(name, value.place), Sequence(tuple(Scalar(item.text, value.place) for item in items),
-                                                               value.place)) for name, items in columns.items())
-            entries.append((Scalar("table", key.place), MappingNode(table, value.place)))
+            entries.append((Scalar("table", key.place), _table(folder / value.text, value)))
         else:
             entries.append((key, _with_tables(value, folder)))
     return MappingNode(tuple(entries), root.place, root.in_braces)
+
+
+def _table(path: Path, name: Scalar) -> Node:
+    """A table file as the mapping that could stand in the calculation file instead."""
+    columns = read_table_file(path, name.place, Collector()) or {}
+    return MappingNode(
+        tuple(
+            (Scalar(column, name.place), Sequence(tuple(Scalar(item.text, name.place) for item in items), name.place))
+            for column, items in columns.items()
+        ),
+        name.place,
+    )

@@ -17,11 +17,11 @@ import numpy as np
 
 sys.path.insert(0, str(Path(__file__).parent.parent / "chain"))
 
-from small_calculations import COOLER, chain_of  # noqa: E402
+from small_calculations import COOLER, chain_of
 
-from calcbook.chain.solve import PIECE, solve  # noqa: E402
-from calcbook.library import load_material  # noqa: E402
-from calcbook.properties import pure  # noqa: E402
+from calcbook.chain.solve import PIECE, solve
+from calcbook.library import load_material
+from calcbook.properties import pure
 
 CLOSED = 1e-13
 
@@ -37,13 +37,15 @@ def drawn(base: dict[str, np.ndarray], count: int, names: tuple[str, ...]) -> di
 
 
 class ByHand:
-    """The cooler written out: Gnielinski 1976 with Filonenko's friction factor, k(T) of the wall, series sum."""
+    """The cooler written out: Gnielinski 1976 with Filonenko's friction factor, k(T) of the wall."""
 
     def __init__(self, pressure: float):
         self.water = pure("water").at(pressure)
         card = load_material("stainless-316-kaschnitz-2017")
         self.at, self.k = card.temperatures, card.conductivities
-        self.integral = np.concatenate([[0.0], np.cumsum(0.5 * (self.k[1:] + self.k[:-1]) * np.diff(self.at))])
+        self.integral = np.concatenate(
+            [[0.0], np.cumsum(0.5 * (self.k[1:] + self.k[:-1]) * np.diff(self.at))]
+        )
 
     def to(self, temperature: np.ndarray) -> np.ndarray:
         """The integral of k from the first row to a temperature."""
@@ -53,7 +55,11 @@ class ByHand:
 
     def prandtl(self, temperature: np.ndarray) -> np.ndarray:
         value = self.water.value
-        return value("viscosity", temperature) * value("heat capacity", temperature) / value("conductivity", temperature)
+        return (
+            value("viscosity", temperature)
+            * value("heat capacity", temperature)
+            / value("conductivity", temperature)
+        )
 
     def overall(self, x: dict[str, np.ndarray]) -> np.ndarray:
         """U in service on the outside, by repeated substitution until the wall stands still."""
@@ -63,7 +69,14 @@ class ByHand:
         speed = x["given/m_hot"] / (self.water.value("density", hot) * x["given/N"] * np.pi / 4 * d_i**2)
         re = self.water.value("density", hot) * speed * d_i / mu
         f = (1.82 * np.log10(re) - 1.64) ** -2
-        plain = f / 8 * (re - 1000) * pr / (1 + 12.7 * np.sqrt(f / 8) * (pr ** (2 / 3) - 1)) * (1 + (d_i / length) ** (2 / 3))
+        plain = (
+            f
+            / 8
+            * (re - 1000)
+            * pr
+            / (1 + 12.7 * np.sqrt(f / 8) * (pr ** (2 / 3) - 1))
+            * (1 + (d_i / length) ** (2 / 3))
+        )
         outer = x["given/R_fo"] + 1 / x["given/h_o"]
         surface = hot - (hot - cold) / 3
         wall = 0.5 * (hot + cold)
@@ -87,7 +100,9 @@ class ByHand:
         """The same, piece by piece, so that arrays stay in the cache."""
         result = np.empty(count)
         for start in range(0, count, PIECE):
-            part = {name: value[start : start + PIECE] if value.ndim else value for name, value in inputs.items()}
+            part = {
+                name: value[start : start + PIECE] if value.ndim else value for name, value in inputs.items()
+            }
             result[start : start + PIECE] = self.overall(part)
         return result
 
@@ -106,7 +121,10 @@ def main() -> None:
     base = chain.case_inputs("")
     name = chain.results["U"]
     some = ("given/m_hot", "given/h_o", "given/R_fo")
-    for title, names in (("flow, film, deposit", some), ("and both temperatures", (*some, "given/T_hot", "given/T_cold"))):
+    for title, names in (
+        ("flow, film, deposit", some),
+        ("and both temperatures", (*some, "given/T_hot", "given/T_cold")),
+    ):
         inputs = drawn(base, count, names)
         hand = ByHand(float(base["given/p_hot"]))
         solve(chain, {key: value[:10] if value.ndim else value for key, value in inputs.items()}, "service")
@@ -114,10 +132,15 @@ def main() -> None:
         whole, hand_time = seconds(lambda inputs=inputs, hand=hand: hand.overall(inputs))
         _, piece_time = seconds(lambda inputs=inputs, hand=hand: hand.in_pieces(inputs, count))
         apart = np.max(np.abs(solution.values[name] / whole - 1))
-        print(f"{count} samples, {title} drawn: engine {engine_time:.2f} s, by hand {hand_time:.2f} s"
-              f" (in pieces {piece_time:.2f} s)")
-        print(f"  ratio engine / by hand {engine_time / hand_time:.2f}, to pieces {engine_time / piece_time:.2f};"
-              f" U differs by {apart:.1e}; converged {int(solution.converged.sum())}")
+        print(
+            f"{count} samples, {title} drawn: engine {engine_time:.2f} s, by hand {hand_time:.2f} s"
+            f" (in pieces {piece_time:.2f} s)"
+        )
+        print(
+            f"  ratio engine / by hand {engine_time / hand_time:.2f},"
+            f" to pieces {engine_time / piece_time:.2f};"
+            f" U differs by {apart:.1e}; converged {int(solution.converged.sum())}"
+        )
     print(f"highest memory {resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024:.0f} MiB")
 
 

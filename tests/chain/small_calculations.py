@@ -35,13 +35,24 @@ def chain_of(folder: Path, body: str, cards: dict[str, str] | None = None) -> Ch
 
 def givens(**figures: str) -> str:
     """The `givens:` of a file."""
-    rows = [f"  {symbol}: {{value: {text}, is: trial figure {symbol}, source: test}}" for symbol, text in figures.items()]
+    rows = [
+        f"  {symbol}: {{value: {text}, is: trial figure {symbol}, source: test}}"
+        for symbol, text in figures.items()
+    ]
     return "givens:\n" + "\n".join(rows) + "\n"
 
 
 COOLER_GIVENS = {
-    "d_i": "15.75 mm", "d_o": "19.05 mm", "L": "4.88 m", "N": "62", "m_hot": "18.2 kg/s", "T_hot": "74 degC",
-    "p_hot": "4 bara", "T_cold": "31 degC", "R_fi": "0.00009 m^2 K/W", "R_fo": "0.00035 m^2 K/W",
+    "d_i": "15.75 mm",
+    "d_o": "19.05 mm",
+    "L": "4.88 m",
+    "N": "62",
+    "m_hot": "18.2 kg/s",
+    "T_hot": "74 degC",
+    "p_hot": "4 bara",
+    "T_cold": "31 degC",
+    "R_fi": "0.00009 m^2 K/W",
+    "R_fo": "0.00035 m^2 K/W",
     "h_o": "5200 W/(m^2 K)",
 }
 COOLER_REST = """\
@@ -59,8 +70,21 @@ report: {U on: outside}
 COOLER = givens(**COOLER_GIVENS) + COOLER_REST
 
 # A viscous oil from a table: density linear, viscosity log-linear in T.
-OIL = givens(d_i="16 mm", d_o="20 mm", L="3 m", N="40", m_oil="6 kg/s", T_oil="90 degC", T_cold="20 degC",
-             R_fi="0.0002 m^2 K/W", R_fo="0.0001 m^2 K/W", h_o="4000 W/(m^2 K)", k_w="45 W/(m K)") + """\
+OIL = (
+    givens(
+        d_i="16 mm",
+        d_o="20 mm",
+        L="3 m",
+        N="40",
+        m_oil="6 kg/s",
+        T_oil="90 degC",
+        T_cold="20 degC",
+        R_fi="0.0002 m^2 K/W",
+        R_fo="0.0001 m^2 K/W",
+        h_o="4000 W/(m^2 K)",
+        k_w="45 W/(m K)",
+    )
+    + """\
 fluids:
   oil:
     table:
@@ -81,12 +105,24 @@ resistances:
   - {name: water film, kind: film, coefficient: h_o, on: outside, temperature: T_cold}
 report: {U on: outside}
 """
+)
 
 
 def insulated_pipe(surroundings: str = "20 degC", air: str = "20 degC", steam: str = "180 degC") -> str:
     """An insulated steam pipe: free convection beside radiation, and two walls whose k follows T."""
-    return givens(d_i="102.3 mm", d_o="114.3 mm", t_ins="50 mm", T_steam=steam, T_air=air, T_sur=surroundings,
-                  p_air="1.01325 bara", h_i="8000 W/(m^2 K)", eps="0.3") + """\
+    return (
+        givens(
+            d_i="102.3 mm",
+            d_o="114.3 mm",
+            t_ins="50 mm",
+            T_steam=steam,
+            T_air=air,
+            T_sur=surroundings,
+            p_air="1.01325 bara",
+            h_i="8000 W/(m^2 K)",
+            eps="0.3",
+        )
+        + """\
 streams:
   air: {fluid: air, temperature: T_air, pressure: p_air}
 geometry: {shape: tube, inside diameter: d_i, outside diameter: d_o}
@@ -100,13 +136,26 @@ resistances:
       - {name: radiation, kind: radiation, emissivity: eps, surroundings: T_sur}
 report: {U on: outside}
 """
+    )
 
 
 def bare_surface(surface_limit: str = "", **figures: str) -> str:
     """A plane wall, thin, with air at rest and radiation outside."""
-    stated = {"t": "6 mm", "k_w": "45 W/(m K)", "H": "1 m", "W": "1 m", "T_in": "60 degC", "T_air": "20 degC",
-              "T_sur": "20 degC", "p_air": "1.01325 bara", "h_i": "30 W/(m^2 K)", "eps": "0.9"} | figures
-    return givens(**stated) + """\
+    stated = {
+        "t": "6 mm",
+        "k_w": "45 W/(m K)",
+        "H": "1 m",
+        "W": "1 m",
+        "T_in": "60 degC",
+        "T_air": "20 degC",
+        "T_sur": "20 degC",
+        "p_air": "1.01325 bara",
+        "h_i": "30 W/(m^2 K)",
+        "eps": "0.9",
+    } | figures
+    return (
+        givens(**stated)
+        + """\
 streams:
   air: {fluid: air, temperature: T_air, pressure: p_air}
 geometry: {shape: plane, height: H, width: W}
@@ -119,10 +168,20 @@ resistances:
       - {name: radiation, kind: radiation, emissivity: eps, surroundings: T_sur}
 report: {U on: outside}
 """
+    )
 
 
-SPHERE = givens(d_i="1.2 m", d_o="1.24 m", T_in="150 degC", T_out="15 degC", h_i="250 W/(m^2 K)",
-                h_o="12 W/(m^2 K)", R_f="0.0003 m^2 K/W") + """\
+SPHERE = (
+    givens(
+        d_i="1.2 m",
+        d_o="1.24 m",
+        T_in="150 degC",
+        T_out="15 degC",
+        h_i="250 W/(m^2 K)",
+        h_o="12 W/(m^2 K)",
+        R_f="0.0003 m^2 K/W",
+    )
+    + """\
 geometry: {shape: sphere, inside diameter: d_i, outside diameter: d_o}
 resistances:
   - {name: inner film, kind: film, coefficient: h_i, temperature: T_in}
@@ -131,9 +190,19 @@ resistances:
   - {name: outer film, kind: film, coefficient: h_o, temperature: T_out}
 report: {U on: inside}
 """
+)
 # Stated figures alone, without temperatures.
-STATED = givens(d_i="14.83 mm", d_o="19.05 mm", k_w="16 W/(m K)", h_i="5000 W/(m^2 K)", h_o="1500 W/(m^2 K)",
-                R_fi="0.00018 m^2 K/W", R_fo="0.00018 m^2 K/W") + """\
+STATED = (
+    givens(
+        d_i="14.83 mm",
+        d_o="19.05 mm",
+        k_w="16 W/(m K)",
+        h_i="5000 W/(m^2 K)",
+        h_o="1500 W/(m^2 K)",
+        R_fi="0.00018 m^2 K/W",
+        R_fo="0.00018 m^2 K/W",
+    )
+    + """\
 geometry: {shape: tube, inside diameter: d_i, outside diameter: d_o}
 resistances:
   - {name: inner film, kind: film, coefficient: h_i, on: inside}
@@ -143,9 +212,12 @@ resistances:
   - {name: outer film, kind: film, coefficient: h_o, on: outside}
 report: {U on: outside}
 """
+)
 
 
-def house_method(name: str, relation: str, constants: dict[str, str], needs: str = "", closes_on: str = "surface") -> str:
+def house_method(
+    name: str, relation: str, constants: dict[str, str], needs: str = "", closes_on: str = "surface"
+) -> str:
     """A house method that gives h."""
     rows = "\n".join(f"  {symbol}: {text}" for symbol, text in constants.items())
     return f"""\
@@ -196,9 +268,18 @@ sources:
 
 def plane_between(inner: str, outer: str, **figures: str) -> str:
     """A plane wall between two house situations, in water on both sides; k is stated."""
-    stated = {"T_hot": "120 degC", "T_cold": "100 degC", "t": "2 mm", "k_w": "20 W/(m K)", "H": "1 m", "W": "1 m",
-              "p": "5 bara"} | figures
-    return givens(**stated) + f"""\
+    stated = {
+        "T_hot": "120 degC",
+        "T_cold": "100 degC",
+        "t": "2 mm",
+        "k_w": "20 W/(m K)",
+        "H": "1 m",
+        "W": "1 m",
+        "p": "5 bara",
+    } | figures
+    return (
+        givens(**stated)
+        + f"""\
 streams:
   hot: {{fluid: water, temperature: T_hot, pressure: p, phase: liquid}}
   cold: {{fluid: water, temperature: T_cold, pressure: p, phase: liquid}}
@@ -209,3 +290,4 @@ resistances:
   - {{name: cold film, kind: film, stream: cold, situation: {outer}}}
 report: {{U on: outside}}
 """
+    )

@@ -1,4 +1,4 @@
-"""What must hold in every solution: U*A on every surface, the heat flow through every term, the summed drops."""
+"""What holds in every solution: U*A on every surface, the heat flow of every term, the summed drops."""
 
 from __future__ import annotations
 
@@ -67,7 +67,10 @@ def test_closure_of_the_record(tmp_path, name):
 
 
 def test_wall_conductivity_is_the_mean_over_its_own_temperatures(tmp_path):
-    """Rock wool 50 degC 0.037, 100 degC 0.043, 300 degC 0.088 W/(m K), straight between (UK ETSU booklet 8)."""
+    """Rock wool 50 degC 0.037, 100 degC 0.043, 300 degC 0.088 W/(m K), straight between.
+
+    UK Fuel Efficiency Booklet 8 (ETSU), as the card gives it.
+    """
     chain = chain_of(tmp_path, insulated_pipe())
     solution = solve(chain, chain.case_inputs(""), "service")
     first, second = solution.number("insulation/T_1"), solution.number("insulation/T_2")

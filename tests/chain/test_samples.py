@@ -22,8 +22,13 @@ from calcbook.chain.solve import solve
 from calcbook.interface import solve_file
 
 BODIES = {
-    "cooler": COOLER, "oil": OIL, "insulated pipe": insulated_pipe(), "insulated pipe, cold sky": insulated_pipe("-20 degC"),
-    "plane wall": bare_surface(T_sur="-10 degC"), "sphere": SPHERE, "stated": STATED,
+    "cooler": COOLER,
+    "oil": OIL,
+    "insulated pipe": insulated_pipe(),
+    "insulated pipe, cold sky": insulated_pipe("-20 degC"),
+    "plane wall": bare_surface(T_sur="-10 degC"),
+    "sphere": SPHERE,
+    "stated": STATED,
 }
 
 
@@ -52,8 +57,11 @@ def test_a_sample_alone_and_among_others(tmp_path, name, condition):
     together = solve(chain, inputs, condition)
     assert together.converged.all()
     for index in range(12):
-        alone = solve(chain, {key: np.asarray(value if value.ndim == 0 else value[index]) for key, value in inputs.items()},
-                      condition)
+        alone = solve(
+            chain,
+            {key: np.asarray(value if value.ndim == 0 else value[index]) for key, value in inputs.items()},
+            condition,
+        )
         for step, value in alone.values.items():
             if isinstance(value, np.ndarray):
                 there = np.broadcast_to(together.values[step], (12,))[index]
@@ -76,13 +84,17 @@ def test_samples_that_choose_different_methods(tmp_path):
         assert int(alone.chosen["tube film"]) == expected[index]
         for step in alone.values:
             if isinstance(alone.values[step], np.ndarray) and not step.startswith("tube film/gnielinski"):
-                assert same_bits(alone.values[step], np.broadcast_to(together.values[step], (25,))[index]), step
+                assert same_bits(alone.values[step], np.broadcast_to(together.values[step], (25,))[index]), (
+                    step
+                )
     laminar = together.values["tube film/gnielinski-laminar-t/h"]
     assert np.isfinite(laminar[expected == 0]).all()
 
 
 def test_cases_are_samples_like_others(tmp_path):
-    body = COOLER + """\
+    body = (
+        COOLER
+        + """\
 cases:
   winter:
     T_cold: {value: 12 degC, source: test}
@@ -90,10 +102,13 @@ cases:
   turndown:
     m_hot: {value: 1.1 kg/s, source: test}
 """
+    )
     chain = chain_of(tmp_path, body)
     solved = solve_file(tmp_path / "trial.yaml")
     names = ["", "winter", "turndown"]
-    stacked = {key: np.stack([chain.case_inputs(name)[key] for name in names]) for key in chain.case_inputs("")}
+    stacked = {
+        key: np.stack([chain.case_inputs(name)[key] for name in names]) for key in chain.case_inputs("")
+    }
     together = solve(chain, stacked, "service")
     assert len(set(together.chosen["tube film"].tolist())) == 2
     for place, case in enumerate(solved.cases):
@@ -131,15 +146,22 @@ def test_failed_samples_are_counted_and_disturb_nobody(tmp_path):
     failed = np.isin(np.arange(9), [3, 6])
     np.testing.assert_array_equal(mixed.converged, ~failed)
     name = chain.results["U"]
-    reference = solve(chain, inputs | {"given/m_hot": flows, "given/T_hot": np.full(9, float(inputs["given/T_hot"]))}, "service")
+    reference = solve(
+        chain,
+        inputs | {"given/m_hot": flows, "given/T_hot": np.full(9, float(inputs["given/T_hot"]))},
+        "service",
+    )
     assert same_bits(mixed.values[name][~failed], reference.values[name][~failed])
     assert same_bits(reference.values[name], good.values[name])
 
 
 def test_pieces_join_without_a_seam(tmp_path, monkeypatch):
-    """The size of the pieces, in which many samples are solved, changes no bit, also where pieces choose apart."""
+    """The size of the pieces that samples are solved in changes no bit, also where pieces choose apart."""
     chain = chain_of(tmp_path, COOLER)
-    inputs = chain.case_inputs("") | {"given/m_hot": np.geomspace(0.25, 18.2, 37), "given/T_cold": np.linspace(280, 330, 37)}
+    inputs = chain.case_inputs("") | {
+        "given/m_hot": np.geomspace(0.25, 18.2, 37),
+        "given/T_cold": np.linspace(280, 330, 37),
+    }
     whole = solve(chain, inputs, "service")
     monkeypatch.setattr(engine, "PIECE", 5)
     pieces = solve(chain, inputs, "service")
@@ -169,7 +191,7 @@ def test_no_samples_are_refused(tmp_path):
 
 @pytest.mark.parametrize("flow", ["18.2 kg/s", "0.4 kg/s"])
 def test_every_method_of_a_situation_closes_or_says_why(tmp_path, flow):
-    """Also where the first guess leads below freezing on the way; what gives no positive figure cannot close."""
+    """Also where the first guess leads below freezing; what gives no positive figure cannot close."""
     chain_of(tmp_path, givens(**(COOLER_GIVENS | {"m_hot": flow})) + COOLER_REST)
     solved = solve_file(tmp_path / "trial.yaml")
     assert len(solved.cross) > 15

@@ -10,8 +10,13 @@ from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.solve import solve
 
 BODIES = {
-    "cooler": COOLER, "oil": OIL, "insulated pipe": insulated_pipe(), "insulated pipe, cold sky": insulated_pipe("-20 degC"),
-    "plane wall": bare_surface(T_sur="-10 degC"), "sphere": SPHERE, "stated": STATED,
+    "cooler": COOLER,
+    "oil": OIL,
+    "insulated pipe": insulated_pipe(),
+    "insulated pipe, cold sky": insulated_pipe("-20 degC"),
+    "plane wall": bare_surface(T_sur="-10 degC"),
+    "sphere": SPHERE,
+    "stated": STATED,
 }
 # Slopes by pressure are differences of the backend and hold about 1e-5; all else comes from the trees.
 PRESSURE = 1e-4
@@ -22,7 +27,9 @@ def difference(chain, inputs, condition: str, name: str, wanted: str) -> float:
     step = 2e-3 * abs(float(inputs[name])) if "/T_" not in name else 0.1
 
     def at(factor: float) -> float:
-        return solve(chain, inputs | {name: np.asarray(inputs[name] + factor * step)}, condition).number(wanted)
+        return solve(chain, inputs | {name: np.asarray(inputs[name] + factor * step)}, condition).number(
+            wanted
+        )
 
     return (8 * (at(1) - at(-1)) - (at(2) - at(-2))) / (12 * step)
 
@@ -34,7 +41,11 @@ def test_slopes_against_differences(tmp_path, name, condition):
     inputs = chain.case_inputs("")
     wanted = [chain.results["U"], chain.results["UA"]]
     if chain.has_temperatures:
-        wanted += [chain.results["heat flow"], chain.inner.surface_temperature, chain.outer.surface_temperature]
+        wanted += [
+            chain.results["heat flow"],
+            chain.inner.surface_temperature,
+            chain.outer.surface_temperature,
+        ]
     slopes = derivatives(chain, inputs, condition, tuple(wanted))
     for result in wanted:
         scale = max(abs(float(slopes[result].get(key, 0.0)) * float(inputs[key])) for key in inputs)
@@ -42,7 +53,10 @@ def test_slopes_against_differences(tmp_path, name, condition):
             expected = difference(chain, inputs, condition, key, result)
             found = float(np.asarray(slopes[result].get(key, 0.0)))
             band = PRESSURE if "/p_" in key else 1e-6
-            assert found == pytest.approx(expected, rel=band, abs=1e-9 * scale / abs(float(inputs[key]))), (result, key)
+            assert found == pytest.approx(expected, rel=band, abs=1e-9 * scale / abs(float(inputs[key]))), (
+                result,
+                key,
+            )
 
 
 def test_slopes_on_arrays_are_those_of_each_sample(tmp_path):
@@ -52,7 +66,9 @@ def test_slopes_on_arrays_are_those_of_each_sample(tmp_path):
     name = chain.results["U"]
     together = derivatives(chain, inputs, "service", (name,))[name]
     for index in range(9):
-        alone = derivatives(chain, inputs | {"given/m_hot": inputs["given/m_hot"][index]}, "service", (name,))[name]
+        alone = derivatives(
+            chain, inputs | {"given/m_hot": inputs["given/m_hot"][index]}, "service", (name,)
+        )[name]
         for key, slope in alone.items():
             assert together[key].shape == (9,)
             # 1e-12: the small systems are solved by elimination with another order of rounding.

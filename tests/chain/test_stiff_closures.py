@@ -29,8 +29,10 @@ def churchill_chu_cylinder(surface: float, bulk: float, diameter: float) -> floa
     """Film coefficient of air at rest off a level cylinder, written out anew (Churchill and Chu 1975)."""
     film = 0.5 * (surface + bulk)
     air = pure("air").at(101325.0)
-    rho, mu, lam, cp, beta = (float(air.value(name, film)) for name in (
-        "density", "viscosity", "conductivity", "heat capacity", "expansion coefficient"))
+    rho, mu, lam, cp, beta = (
+        float(air.value(name, film))
+        for name in ("density", "viscosity", "conductivity", "heat capacity", "expansion coefficient")
+    )
     prandtl = mu * cp / lam
     rayleigh = GRAVITY * beta * abs(surface - bulk) * diameter**3 * rho**2 * cp / (mu * lam)
     bracket = (1 + (0.559 / prandtl) ** (9 / 16)) ** (8 / 27)
@@ -71,21 +73,27 @@ def test_insulated_pipe_closes_from_a_thousandth_of_a_kelvin_to_red_heat(tmp_pat
 # --- a flux law against a falling coefficient ---------------------------------------------------------
 
 CUBIC = house_method("house-cubic", "h = C**(1/3)*q**(2/3)", {"C": "40 W/(m^2 K^3)"}, "q: heat flux", "flux")
-FALLING = house_method("house-falling", "h = h_1*(abs(T_s - T_b)/dT_1)**(-0.25)",
-                       {"h_1": "20000 W/(m^2 K)", "dT_1": "1 K"})
+FALLING = house_method(
+    "house-falling", "h = h_1*(abs(T_s - T_b)/dT_1)**(-0.25)", {"h_1": "20000 W/(m^2 K)", "dT_1": "1 K"}
+)
 FLUX_CARDS = {
     "house-cubic": CUBIC,
     "house-falling": FALLING,
     "house-boiling": house_situation("house-boiling", "- {use: house-cubic, because: trial}", "house-cubic"),
-    "house-condensing": house_situation("house-condensing", "- {use: house-falling, because: trial}", "house-falling"),
+    "house-condensing": house_situation(
+        "house-condensing", "- {use: house-falling, because: trial}", "house-falling"
+    ),
 }
 
 
 @pytest.mark.parametrize("difference", [0.01, 1.0, 20.0, 60.0])
 def test_cubic_flux_law_against_a_falling_coefficient(tmp_path, difference):
     """q = 40 dT^3 on the cold side, q = 20000 dT^0.75 on the hot side, 2 mm of wall with 20 W/(m K)."""
-    chain = chain_of(tmp_path, plane_between("house-condensing", "house-boiling",
-                                             T_hot=f"{100 + difference} degC"), FLUX_CARDS)
+    chain = chain_of(
+        tmp_path,
+        plane_between("house-condensing", "house-boiling", T_hot=f"{100 + difference} degC"),
+        FLUX_CARDS,
+    )
     solution = solve(chain, chain.case_inputs(""), "service")
     assert bool(solution.converged)
 
@@ -113,15 +121,24 @@ def test_cubic_flux_law_on_many_samples(tmp_path):
 
 LOW = house_method("house-low", "h = h_1", {"h_1": "500 W/(m^2 K)"})
 HIGH = house_method("house-high", "h = h_1", {"h_1": "2000 W/(m^2 K)"})
-JUMP = house_method("house-jump", "h = h_1 if abs(T_s - T_b) < dT_1 else h_2",
-                    {"h_1": "500 W/(m^2 K)", "h_2": "2000 W/(m^2 K)", "dT_1": "10 K"})
+JUMP = house_method(
+    "house-jump",
+    "h = h_1 if abs(T_s - T_b) < dT_1 else h_2",
+    {"h_1": "500 W/(m^2 K)", "h_2": "2000 W/(m^2 K)", "dT_1": "10 K"},
+)
 PLAIN = house_method("house-plain", "h = h_1", {"h_1": "1000 W/(m^2 K)"})
 JUMP_CARDS = {
-    "house-low": LOW, "house-high": HIGH, "house-jump": JUMP, "house-plain": PLAIN,
+    "house-low": LOW,
+    "house-high": HIGH,
+    "house-jump": JUMP,
+    "house-plain": PLAIN,
     "within-card": house_situation("within-card", "- {use: house-jump, because: trial}", "house-jump"),
     "between-cards": house_situation(
-        "between-cards", "- {when: x < 1.0268, use: house-low, because: small difference}\n"
-        "- {use: house-high, because: large difference}", "house-low, house-high"),
+        "between-cards",
+        "- {when: x < 1.0268, use: house-low, because: small difference}\n"
+        "- {use: house-high, because: large difference}",
+        "house-low, house-high",
+    ),
     "smooth": house_situation("smooth", "- {use: house-plain, because: trial}", "house-plain"),
 }
 
@@ -149,7 +166,9 @@ def test_jump_without_a_root_takes_the_lower_side_and_says_both(tmp_path, situat
 
 @pytest.mark.parametrize(("hot", "coefficient"), [("110 degC", 500.0), ("180 degC", 2000.0)])
 def test_jump_with_a_root_on_one_side_raises_nothing(tmp_path, hot, coefficient):
-    chain = chain_of(tmp_path, plane_between("smooth", "within-card", T_hot=hot, k_w="20000 W/(m K)"), JUMP_CARDS)
+    chain = chain_of(
+        tmp_path, plane_between("smooth", "within-card", T_hot=hot, k_w="20000 W/(m K)"), JUMP_CARDS
+    )
     solution = solve(chain, chain.case_inputs(""), "service")
     assert bool(solution.converged)
     assert not solution.jump_sides
@@ -166,7 +185,9 @@ def test_jump_in_some_samples_leaves_the_others_alone(tmp_path):
     # No root where the drop of the lower side passes 10 K and that of the upper does not: 15 K to 30 K.
     np.testing.assert_array_equal(solution.jumps["cold film"], (differences > 15) & (differences < 30))
     lower, upper = 1 / (1e-3 + 1e-7 + 1 / 500), 1 / (1e-3 + 1e-7 + 1 / 2000)
-    np.testing.assert_allclose(solution.values[chain.results["U"]], np.where(differences < 30, lower, upper), rtol=1e-12)
+    np.testing.assert_allclose(
+        solution.values[chain.results["U"]], np.where(differences < 30, lower, upper), rtol=1e-12
+    )
 
 
 # --- no direction -------------------------------------------------------------------------------------
@@ -182,7 +203,8 @@ def test_equal_temperatures_are_undetermined_and_have_an_answer(tmp_path):
 
 def test_equal_temperatures_raise_an_open_item_where_the_direction_matters(tmp_path):
     text = givens(**(COOLER_GIVENS | {"T_cold": "74 degC"})) + COOLER_REST.replace(
-        "situation: inside-tube}", "situation: inside-tube, method: dittus-boelter-mcadams}")
+        "situation: inside-tube}", "situation: inside-tube, method: dittus-boelter-mcadams}"
+    )
     chain_of(tmp_path, text)
     solved = solve_file(tmp_path / "trial.yaml")
     assert any("undetermined" in item.text for item in solved.open_items)
@@ -192,14 +214,19 @@ def test_equal_temperatures_raise_an_open_item_where_the_direction_matters(tmp_p
 
 
 def written_out_surface(inner: float, air: float, surroundings: float, emissivity: float, film) -> float:
-    """Surface temperature of the plane wall from its balance, with the film coefficient as a function of T_s."""
+    """Surface temperature of the plane wall from its balance, the film coefficient a function of T_s."""
     resistance = 1 / 30 + 0.006 / 45
 
     def balance(trial: float) -> float:
-        return (inner - trial) / resistance - film(trial) * (trial - air) - emissivity * SIGMA * (
-            trial**4 - surroundings**4)
+        return (
+            (inner - trial) / resistance
+            - film(trial) * (trial - air)
+            - emissivity * SIGMA * (trial**4 - surroundings**4)
+        )
 
-    return brentq(balance, min(inner, air, surroundings) - 1, max(inner, air, surroundings) + 1, xtol=1e-12, rtol=1e-14)
+    return brentq(
+        balance, min(inner, air, surroundings) - 1, max(inner, air, surroundings) + 1, xtol=1e-12, rtol=1e-14
+    )
 
 
 @pytest.mark.parametrize(
@@ -213,12 +240,16 @@ def written_out_surface(inner: float, air: float, surroundings: float, emissivit
     ],
 )
 def test_surroundings_of_another_temperature(tmp_path, inner, air, surroundings, film_is_negative):
-    chain = chain_of(tmp_path, bare_surface(T_in=f"{inner} degC", T_air=f"{air} degC", T_sur=f"{surroundings} degC"))
+    chain = chain_of(
+        tmp_path, bare_surface(T_in=f"{inner} degC", T_air=f"{air} degC", T_sur=f"{surroundings} degC")
+    )
     solution = solve(chain, chain.case_inputs(""), "service")
     assert bool(solution.converged)
     surface = solution.number("outer surface/T_s")
     coefficient = solution.number("outer surface/h of free convection")
-    expected = written_out_surface(inner + 273.15, air + 273.15, surroundings + 273.15, 0.9, lambda _: coefficient)
+    expected = written_out_surface(
+        inner + 273.15, air + 273.15, surroundings + 273.15, 0.9, lambda _: coefficient
+    )
     assert surface == pytest.approx(expected, abs=1e-9)
     assert (surface < air + 273.15) == film_is_negative
     low, high = sorted((inner, surroundings, air))[0], sorted((inner, surroundings, air))[2]

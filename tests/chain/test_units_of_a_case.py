@@ -13,8 +13,13 @@ from small_calculations import COOLER_REST, chain_of, givens
 
 from calcbook.chain.solve import solve
 
-# Exact: 1 in 25.4 mm, 1 lb 0.45359237 kg, 1 Btu (International Table) 1055.05585262 J, 1 psi 6894.757293168... Pa.
-INCH, FOOT, POUND, BTU = Fraction("0.0254"), Fraction("0.3048"), Fraction("0.45359237"), Fraction("1055.05585262")
+# Exact: 1 in 25.4 mm, 1 lb 0.45359237 kg, 1 Btu (International Table) 1055.05585262 J, g_n 9.80665 m/s^2.
+INCH, FOOT, POUND, BTU = (
+    Fraction("0.0254"),
+    Fraction("0.3048"),
+    Fraction("0.45359237"),
+    Fraction("1055.05585262"),
+)
 PSI = POUND * Fraction("9.80665") / INCH**2
 COEFFICIENT = BTU / 3600 / FOOT**2 / Fraction(5, 9)
 
@@ -35,8 +40,10 @@ def test_customary_and_si(parts):
     bore, flow, warm, cold, inner, outer, film, pressure = parts
     d_i, d_o = Fraction(10) + 10 * bore, Fraction(24)  # mm
     stated = {
-        "d_i": (d_i / 1000, "m", INCH, "in"), "d_o": (d_o / 1000, "m", INCH, "in"),
-        "L": (Fraction("4.88"), "m", FOOT, "ft"), "m_hot": (4 + 20 * flow, "kg/s", POUND / 3600, "lb/h"),
+        "d_i": (d_i / 1000, "m", INCH, "in"),
+        "d_o": (d_o / 1000, "m", INCH, "in"),
+        "L": (Fraction("4.88"), "m", FOOT, "ft"),
+        "m_hot": (4 + 20 * flow, "kg/s", POUND / 3600, "lb/h"),
         "p_hot": (400_000 + 100_000 * pressure, "Pa", PSI, "psia"),
         "R_fi": (inner * Fraction("4e-4"), "m^2 K/W", 1 / COEFFICIENT, "h ft^2 degF/Btu"),
         "R_fo": (outer * Fraction("4e-4"), "m^2 K/W", 1 / COEFFICIENT, "h ft^2 degF/Btu"),

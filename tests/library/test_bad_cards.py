@@ -1,7 +1,7 @@
 """Bad cards: each with the complete text that is printed for it.
 
-A card ``tests/cases/bad_cards/<fault code>[-n].yaml`` stands beside ``<same>.expected``. To take over new texts,
-run ``python tests/library/test_bad_cards.py`` and read the difference.
+A card ``tests/cases/bad_cards/<fault code>[-n].yaml`` stands beside ``<same>.expected``. To take over new
+texts, run ``python tests/library/test_bad_cards.py`` and read the difference.
 """
 
 from __future__ import annotations

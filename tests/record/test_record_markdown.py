@@ -10,7 +10,7 @@ from hypothesis import strategies as st
 from markdown_it import MarkdownIt
 from markdown_it.token import Token
 
-from calcbook.record.blocks import Bullets, Code, Heading, Paragraph, Quote, Table
+from calcbook.record.blocks import Block, Bullets, Code, Heading, Paragraph, Quote, Table
 from calcbook.record.markdown import markdown, visible
 
 READER = MarkdownIt("commonmark").enable(["table", "strikethrough"])
@@ -85,7 +85,11 @@ def test_paragraphs_bullets_and_quotes_read_back(texts: list[str]) -> None:
 
 @pytest.mark.parametrize("phrase", PHRASES)
 def test_phrases_that_mean_something_in_markdown(phrase: str) -> None:
-    blocks = [Paragraph(phrase), Table((phrase, "b"), ((phrase, phrase),), (phrase,)), Bullets((phrase,))]
+    blocks: list[Block] = [
+        Paragraph(phrase),
+        Table((phrase, "b"), ((phrase, phrase),), (phrase,)),
+        Bullets((phrase,)),
+    ]
     assert inlines(markdown(blocks)) == [
         visible(text) for text in (phrase, phrase, "b", phrase, phrase, phrase, phrase)
     ]

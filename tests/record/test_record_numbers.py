@@ -66,11 +66,14 @@ def test_units_are_printed_after_the_si_brochure() -> None:
     assert unit_text("1") == "1"
 
 
-@pytest.mark.parametrize(
-    ("share", "marks"), [(0.0, 0), (0.012, 0), (0.013, 1), (0.5, 20), (1.0, 40), (-0.1, 0)]
-)
+@pytest.mark.parametrize(("share", "marks"), [(0.0, 0), (0.012, 0), (0.013, 1), (0.5, 20), (1.0, 40)])
 def test_a_share_is_drawn_in_steps_of_two_and_a_half_per_cent(share: float, marks: int) -> None:
     assert bar(share) == "=" * marks
+
+
+def test_a_share_that_is_no_part_of_a_whole_is_said_in_words() -> None:
+    assert bar(-0.1) == "negative"
+    assert bar(29.2) == "more than the whole"
 
 
 def test_residuals_are_bounds() -> None:

@@ -11,6 +11,7 @@ from calcbook.record.numbers import NOT_KNOWN, PLAIN_DIGITS, celsius, fixed, num
 from calcbook.record.page import Page
 
 PER_MARK = 0.025
+WHOLE_ROUNDING = 1e-9
 
 
 def circuit(page: Page) -> list[Block]:
@@ -106,8 +107,12 @@ def _row(index: int, row: TermRow) -> tuple[str, ...]:
 
 
 def bar(share: float) -> str:
-    """A share as a run of equals signs, one for 2.5 %; empty below half of that."""
-    return "=" * int(fixed(max(share, 0.0) / PER_MARK, 0))
+    """A share as a run of equals signs, one for 2.5 %; words for one that is no part of a whole."""
+    if share < 0.0:
+        return "negative"
+    if share > 1.0 + WHOLE_ROUNDING:
+        return "more than the whole"
+    return "=" * int(fixed(share / PER_MARK, 0))
 
 
 def _branches(page: Page, condition: str) -> list[Block]:

@@ -52,8 +52,8 @@ def _documents(page: Page) -> list[Block]:
 
 
 def sign_off(page: Page) -> list[Block]:
-    """One row per role; nothing is signed in a record."""
-    rows = tuple((role, "not signed", "", "", "") for role in page.calculation.settings.roles)
+    """One row per role: valid, void with what changed since, or not signed."""
+    rows = tuple(_sign_off_row(page, role) for role in page.calculation.settings.roles)
     words = (
         "A sign-off stands in a file beside the calculation and names the digest of section 1; any change"
         " of meaning, cards or displayed results voids it. The program shows that names differ and that"
@@ -62,8 +62,15 @@ def sign_off(page: Page) -> list[Block]:
     return [
         Heading(2, "16. Sign-off"),
         Paragraph(words),
-        Table(("Role", "State", "Name", "Date", "Digest"), rows),
+        Table(("Role", "Sign-off", "Name", "Date", "Way of checking", "Note"), rows),
     ]
+
+
+def _sign_off_row(page: Page, role: str) -> tuple[str, str, str, str, str, str]:
+    line = page.life.line(role)
+    if line is None or not line.person:
+        return (role, "not signed", "", "", "", line.note if line is not None else "")
+    return (role, line.validity, line.person, line.date, line.way, line.note)
 
 
 def revision_history(page: Page) -> list[Block]:

@@ -17,7 +17,6 @@ from calcbook.record.numbers import (
 )
 from calcbook.record.page import Page, case_name, counted
 
-LIFECYCLE = "in preparation"
 
 
 def confirmation(page: Page) -> str:
@@ -34,10 +33,10 @@ def title_block(page: Page) -> list[Block]:
         ("Plant", calculation.plant),
         ("Book", calculation.settings.name or "no book"),
         ("Revision", calculation.revision),
-        ("State", LIFECYCLE),
+        ("State", page.life.state),
         ("Confirmation", _confirmation_words(page)),
-        ("Prepared", f"{calculation.prepared_by}, {calculation.date}; not signed"),
-        *((role.capitalize(), "not signed") for role in calculation.settings.roles if role != "prepared"),
+        *((role.capitalize(), _signed(page, role)) for role in calculation.settings.roles),
+        *((("Issue", page.life.issued),) if page.life.issued else ()),
         ("Digest", page.digest.whole),
         ("Digest of the file's meaning", page.digest.meaning),
         ("Digest of the cards used", page.digest.cards),
@@ -47,9 +46,19 @@ def title_block(page: Page) -> list[Block]:
     ]
     return [
         Heading(1, f"Calculation {calculation.number}, revision {calculation.revision}"),
+        *((Quote(page.life.notice),) if page.life.notice else ()),
         Heading(2, "1. Title block"),
         Table(("Item", "Entry"), tuple(rows)),
     ]
+
+
+def _signed(page: Page, role: str) -> str:
+    """Who signed for a role, or that nobody did; the preparer stands in the file as well."""
+    line = page.life.line(role)
+    stated = f"{page.calculation.prepared_by}, {page.calculation.date}; " if role == "prepared" else ""
+    if line is None or not line.person:
+        return f"{stated}not signed"
+    return f"{stated}{line.person}, {line.date}: sign-off {line.validity}"
 
 
 def _confirmation_words(page: Page) -> str:
@@ -80,7 +89,7 @@ def _brief_rows(page: Page) -> list[tuple[str, str, str]]:
         result = page.result(f"U_{condition}")
         if result is not None:
             value = in_report_unit(result.value, result.kind, page.calculation.report, CONCLUSION_DIGITS)
-            words = "with the fouling terms" if condition == "service" else "without the fouling terms"
+            words = _fouling_words(page, condition)
             rows.append(("U in service" if condition == "service" else "U clean", value, f"{basis}; {words}"))
     cleanliness, excess = page.result("cleanliness"), page.result("excess_surface")
     if cleanliness is not None:
@@ -98,6 +107,13 @@ def _brief_rows(page: Page) -> list[tuple[str, str, str]]:
             rows.append((title + suffix, value, "U·A times the difference of the bulk temperatures"))
     rows.append(("Controlling term in service", *_controlling(page.base)))
     return rows
+
+
+def _fouling_words(page: Page, condition: str) -> str:
+    """What sets the two conditions apart; nothing does where no fouling term is stated."""
+    if not any(row.kind == "fouling" for row in page.base.terms[condition]):
+        return "no fouling term is stated"
+    return "with the fouling terms" if condition == "service" else "without the fouling terms"
 
 
 def _controlling(case: CaseOutcome) -> tuple[str, str]:
@@ -173,13 +189,16 @@ def open_items(page: Page) -> list[Block]:
 # --- changes and purpose ----------------------------------------------------------------------------
 
 
+NO_CHANGES = (
+    "There is no earlier issued revision to compare with. The reasons of each revision are in section 17."
+)
+
+
 def changes(page: Page) -> list[Block]:
     """What moved since the last issued revision."""
     return [
         Heading(2, "3. Changes since the last issued revision"),
-        Paragraph(
-            "No revision of this calculation is issued yet. The reasons of each revision are in section 17."
-        ),
+        *(page.life.changes or (Paragraph(NO_CHANGES),)),
     ]
 
 

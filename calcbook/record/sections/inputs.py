@@ -2,19 +2,23 @@
 
 from __future__ import annotations
 
-from calcbook.calcfile.calculation import Assumption, Given
+import math
+
+from calcbook.calcfile.calculation import Assumption, FluidText, Given
 from calcbook.chain.outcome import PropertyRow
 from calcbook.chain.types import SERVICE, Input
 from calcbook.formulas.names import written_name
 from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Table
 from calcbook.record.numbers import AS_GIVEN_DIGITS, NOT_USED, celsius, number, unit_text, with_unit
 from calcbook.record.page import Page
+from calcbook.record.steps import pressure_words
 
 PROPERTY_COLUMNS = (
     ("density", "ρ, kg/m³", 5),
     ("viscosity", "μ, Pa·s", 5),
     ("conductivity", "λ, W/(m·K)", 5),
     ("heat capacity", "cp, J/(kg·K)", 5),
+    ("Prandtl number", "Pr", 5),
     ("expansion coefficient", "β, 1/K", 5),
 )
 PASCALS_OF_BAR = 1e5
@@ -35,7 +39,23 @@ def givens(page: Page) -> list[Block]:
                 tuple(_literal_row(item) for item in literals),
             )
         )
+    for stream in page.calculation.streams.values():
+        if stream.fluid is not None and stream.fluid.kind in ("table", "constants"):
+            blocks += _fluid(stream.name, stream.fluid)
     return blocks
+
+
+def _fluid(stream: str, fluid: FluidText) -> list[Block]:
+    """A fluid that the file states itself: each property with its values as written."""
+    rows = [(name, "; ".join(value.text for value in values)) for name, values in fluid.columns.items()]
+    if fluid.astm:
+        points = "; ".join(f"{temperature.text}: {viscosity.text}" for temperature, viscosity in fluid.astm)
+        rows.append(("viscosity after ASTM D341", points))
+    return [
+        Heading(3, f"Fluid {fluid.name} of stream {stream}"),
+        Paragraph(f"Source: {fluid.source or 'no source'}."),
+        Table(("Property", "Values as written"), tuple(rows)),
+    ]
 
 
 def _given_row(given: Given, page: Page) -> tuple[str, ...]:
@@ -141,7 +161,7 @@ def _properties(page: Page) -> list[Block]:
         *(title for _, title, _ in asked),
         "Provider",
     )
-    return [Table(columns, tuple(_property_row(row, asked) for row in rows))]
+    return [Table(columns, tuple(_property_row(row, asked, page) for row in rows))]
 
 
 def _flow_states(page: Page) -> list[PropertyRow]:
@@ -170,8 +190,9 @@ def _flow_states(page: Page) -> list[PropertyRow]:
     return found
 
 
-def _property_row(row: PropertyRow, asked: list[tuple[str, str, int]]) -> tuple[str, ...]:
-    pressure = number(row.pressure / PASCALS_OF_BAR) if row.pressure == row.pressure else "saturated"
+def _property_row(row: PropertyRow, asked: list[tuple[str, str, int]], page: Page) -> tuple[str, ...]:
+    without = pressure_words(page.chain.streams[row.stream])
+    pressure = number(row.pressure / PASCALS_OF_BAR) if math.isfinite(row.pressure) else without
     values = (
         number(row.values[name], digits) if name in row.values else NOT_USED for name, _, digits in asked
     )

@@ -246,6 +246,7 @@ def _triggered(page: Page) -> list[str]:
         *_preliminary(page),
         *_hot_surface(page),
         *_wall(page),
+        *_negative(page),
         *_excess(page),
         *_trial(page),
         *_criterion(page),
@@ -286,6 +287,19 @@ def _wall(page: Page) -> list[str]:
         " the method is not meant for this."
         for check in page.every_check()
         if check.card == "wall phase" and check.state in ("outside", "accepted")
+    ]
+
+
+def _negative(page: Page) -> list[str]:
+    """Terms whose resistance is negative, because radiation goes to another temperature than the fluid's."""
+    return [
+        f"Case {case_name(case.name)}, {condition}: the resistance of {row.name} is negative, because"
+        " radiation goes to another temperature than that of the fluid: U and the shares say little here,"
+        " the heat flows do."
+        for case in page.solved.cases
+        for condition in reversed(CONDITIONS)
+        for row in case.terms[condition]
+        if row.share < 0.0
     ]
 
 

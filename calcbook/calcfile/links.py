@@ -1,0 +1,39 @@
+"""A given that is taken from another calculation's result: what the file says, and what was found."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+
+from calcbook.faults import Place
+
+CURRENT = "current"
+
+
+@dataclass(frozen=True, slots=True)
+class LinkText:
+    """`from:` as written: number and result, and the revision it is pinned to (empty: as the source stands)."""
+
+    calculation: str
+    result: str
+    revision: str
+    place: Place
+
+
+@dataclass(frozen=True, slots=True)
+class Link:
+    """A link with what the source gave: revision, digest, the figure as text, and how the source stands.
+
+    ``state`` is current, or says why not: not pinned, source moved, source preliminary, source void.
+    """
+
+    calculation: str
+    result: str
+    revision: str
+    digest: str
+    text: str
+    state: str
+
+
+# Gives the link behind a `from:`. Raises ``Faults`` for a source or result that cannot be had.
+Resolve = Callable[[LinkText], Link]

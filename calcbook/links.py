@@ -1,0 +1,141 @@
+"""Links between calculations: the figure that a result of another calculation gives, and how that source stands.
+
+A link that names a revision takes the figure from that issued copy; one that names none takes it from the
+source as it stands now, solved in turn, and is not pinned. May import: ``calcfile``, ``documents``,
+``faults``. Must never: write, or solve by itself (the solver is handed in).
+"""
+
+from __future__ import annotations
+
+import json
+import re
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass
+from pathlib import Path
+
+from calcbook.calcfile.links import CURRENT, Link, LinkText
+from calcbook.documents import Mapping as MappingNode
+from calcbook.documents import read_file
+from calcbook.faults import Fault, Faults, nearest_names
+
+ISSUED = "issued"
+NUMBER_LINE = re.compile(r"^\s*(?:calculation:\s*\{.*?)?number:\s*[\"']?([A-Za-z0-9_.-]+)", re.MULTILINE)
+DIGITS = 10
+
+
+@dataclass(frozen=True, slots=True)
+class Source:
+    """What a solved source gives: its revision, digest, results by name (value, unit), and its open items."""
+
+    revision: str
+    digest: str
+    results: Mapping[str, tuple[float, str]]
+    open_items: int
+
+
+Solve = Callable[[Path], Source]
+
+
+class Links:
+    """Resolves the links of the calculations of one folder whose issued copies stand under ``output``."""
+
+    def __init__(self, folder: Path, output: Path, solve: Solve):
+        self.folder = folder
+        self.output = output
+        self.solve = solve
+
+    def __call__(self, text: LinkText) -> Link:
+        """The link behind a `from:`. Raises ``Faults``: link-source-unknown, link-revision-unknown,
+        link-result-unknown, and the faults of a source that is solved in turn."""
+        file = self._file(text.calculation)
+        if text.revision:
+            return self._pinned(text, file)
+        if file is None:
+            known = sorted(self._numbers())
+            raise _fault("link-source-unknown", text, f"there is no calculation {text.calculation} in this folder",
+                         text.calculation, ", ".join(known), nearest_names(text.calculation, known))
+        source = self.solve(file)
+        value, unit = self._result(text, source.results)
+        state = "void" if _is_void(file) else "not pinned to an issued revision"
+        if source.open_items and state != "void":
+            state = f"preliminary, {source.open_items} open item(s), and not pinned"
+        return Link(text.calculation, text.result, source.revision, source.digest, figure(value, unit), state)
+
+    def _pinned(self, text: LinkText, file: Path | None) -> Link:
+        folder = self.output / text.calculation / ISSUED / text.revision
+        try:
+            seal = json.loads((folder / "seal.json").read_text(encoding="utf-8"))
+            results = json.loads((folder / "results.json").read_text(encoding="utf-8"))["results"]
+            kind, digest = str(seal["kind"]), str(seal["digest"]["results"])
+        except (OSError, ValueError, KeyError, TypeError):
+            raise _fault("link-revision-unknown", text, f"{text.calculation} has no issued revision {text.revision}",
+                         text.revision, ", ".join(self._issued(text.calculation)) or "an issued revision") from None
+        table = {name: (item["value"], item["unit"]) for name, item in results.items()
+                 if isinstance(item, dict) and isinstance(item.get("value"), int | float) and item.get("unit")}
+        value, unit = self._result(text, table)
+        state = CURRENT
+        if file is not None and _is_void(file):
+            state = "void"
+        elif kind != "final":
+            state = "preliminary"
+        elif newer := self._superseding(text.calculation, text.revision):
+            state = f"source moved: revision {newer} supersedes {text.revision}"
+        return Link(text.calculation, text.result, text.revision, digest, figure(value, unit), state)
+
+    def _result(self, text: LinkText, results: Mapping[str, tuple[float, str]]) -> tuple[float, str]:
+        if text.result not in results:
+            raise _fault("link-result-unknown", text, f"{text.calculation} has no result `{text.result}`", text.result,
+                         ", ".join(results), nearest_names(text.result, results))
+        return results[text.result]
+
+    def _superseding(self, number: str, revision: str) -> str:
+        """The issued revision that supersedes one, if there is any."""
+        for other in self._issued(number):
+            try:
+                seal = json.loads((self.output / number / ISSUED / other / "seal.json").read_text(encoding="utf-8"))
+            except (OSError, ValueError):
+                continue
+            if seal.get("supersedes") == revision:
+                return other
+        return ""
+
+    def _issued(self, number: str) -> list[str]:
+        folder = self.output / number / ISSUED
+        return sorted(path.name for path in folder.iterdir() if path.is_dir()) if folder.is_dir() else []
+
+    def _file(self, number: str) -> Path | None:
+        return self._numbers().get(number)
+
+    def _numbers(self) -> dict[str, Path]:
+        """The calculation files of the folder by their number, from their first lines."""
+        numbers = {}
+        for path in sorted(self.folder.glob("*.yaml")):
+            try:
+                found = NUMBER_LINE.search(path.read_text(encoding="utf-8")[:4000])
+            except (OSError, UnicodeDecodeError):
+                continue
+            if found:
+                numbers.setdefault(found.group(1), path)
+        return numbers
+
+
+def figure(value: float, unit: str) -> str:
+    """A result as a given writes it: ten digits and the SI unit."""
+    number = f"{value:.{DIGITS}g}"
+    return number if unit == "1" else f"{number} {unit}"
+
+
+def _is_void(file: Path) -> bool:
+    """Whether the sign-offs beside a calculation file declare it void."""
+    signoffs = file.with_name(f"{file.stem}.signoffs.yaml")
+    if not signoffs.is_file():
+        return False
+    try:
+        root = read_file(signoffs).root
+    except Faults:
+        return False
+    return isinstance(root, MappingNode) and root.get("void") is not None
+
+
+def _fault(code: str, text: LinkText, message: str, found: str, expected: str, nearest: tuple[str, ...] = ()) -> Faults:
+    return Faults([Fault(code, text.place, message, found, expected, nearest)])
