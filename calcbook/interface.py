@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from functools import cache
 from pathlib import Path
 
 from calcbook.calcfile import Calculation, Settings, read_calculation, read_settings
@@ -49,13 +50,28 @@ def solve_file(path: Path, name: str | None = None, above: tuple[Path, ...] = ()
     ``NotConverged``.
     """
     collector = Collector()
-    settings = read_settings(path.parent)
+    settings = _settings(path.parent, collector)
     resolve = links_of(path, settings, above)
     calculation = read_calculation(path, settings, collector, name, resolve)
-    solved = _solved(calculation, Library(path.parent / HOUSE_CARDS), collector)
+    solved = _solved(calculation, library_of(path.parent / HOUSE_CARDS), collector)
     collector.stop_if_any()
     assert solved is not None
     return solved
+
+
+def _settings(folder: Path, collector: Collector) -> Settings:
+    """The settings of the book; its faults join those of the calculation file."""
+    try:
+        return read_settings(folder)
+    except Faults as faults:
+        collector.take(faults.faults)
+        return Settings()
+
+
+@cache
+def library_of(house: Path) -> Library:
+    """The library of a book, read once a process; cards do not change under a running command."""
+    return Library(house)
 
 
 def links_of(path: Path, settings: Settings, above: tuple[Path, ...] = ()) -> Links:

@@ -122,6 +122,7 @@ class Stream:
     flow: Value | None
     phase: str
     place: Place
+    non_condensable: Value | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -144,6 +145,20 @@ class Deposit:
 
 
 @dataclass(frozen=True, slots=True)
+class Fins:
+    """Fins on the surface that a film acts on; ``values`` holds the figures by their key."""
+
+    shape: str
+    values: Mapping[str, Value]
+    texts: Mapping[str, str]
+    text_places: Mapping[str, Place]
+    place: Place
+
+    def place_of(self, key: str) -> Place:
+        return self.text_places.get(key, self.place)
+
+
+@dataclass(frozen=True, slots=True)
 class Term:
     """One entry of the resistance list, as written. ``values`` holds the figures by their key."""
 
@@ -155,6 +170,7 @@ class Term:
     values: Mapping[str, Value] = field(default_factory=dict)
     with_values: Mapping[str, Value] = field(default_factory=dict)
     deposit: Deposit | None = None
+    fins: Fins | None = None
     branches: tuple[Term, ...] = ()
     includes: tuple[str, ...] = ()
     holds_for: tuple[Value, Value] | None = None

@@ -136,16 +136,29 @@ FLUID = Description(
         Key("source", "document the properties come from"),
     ),
 )
+NON_CONDENSABLE = Description(
+    "non-condensable gas",
+    "gas that does not condense, in the vapour",
+    (Key("mole fraction", "mole fraction in the vapour", "node", of=SOURCED, required=True),),
+)
 STREAM = Description(
     "a stream",
     "a fluid with its state and flow",
     (
         Key("fluid", "name of a fluid, or a mixture, table or constants", "node", of=FLUID, required=True),
-        Key("temperature", "mean bulk temperature", "node", of=SOURCED, required=True),
+        Key("temperature", "mean bulk temperature, or saturation", "node", of=SOURCED, required=True),
         Key("pressure", "pressure; needed for gases", "node", of=SOURCED),
         Key("flow", "mass flow, volume flow or speed, told apart by its unit", "node", of=FLOW),
         Key("phase", "phase the engineer states", "choice", choices=("liquid", "gas")),
-        Key("non-condensable", "share of non-condensable gas", "node", later=True),
+        Key("non-condensable", "non-condensable gas in a vapour", "mapping", of=NON_CONDENSABLE),
+    ),
+)
+PLUGGED = Description(
+    "plugged tubes",
+    "tubes that carry no flow and transfer no heat",
+    (
+        Key("count", "how many", "name", required=True, example="6"),
+        Key("source", "document that says so"),
     ),
 )
 GEOMETRY = Description(
@@ -167,10 +180,10 @@ GEOMETRY = Description(
         Key("width", "width of a plane wall", "node", of=SOURCED, quantity="width"),
         Key("area", "area of a plane wall", "node", of=SOURCED, quantity="area"),
         Key("perimeter", "perimeter of a plane wall", "node", of=SOURCED, quantity="perimeter"),
-        Key("tubes", "tubes of a bundle", "node", later=True),
-        Key("passes", "tube passes", "node", later=True),
-        Key("plugged", "plugged tubes", "node", later=True),
-        Key("effective length", "length that transfers heat", "node", later=True),
+        Key("tubes", "tubes of a bundle, in place of parallel", "node", of=SOURCED, quantity="tubes"),
+        Key("passes", "tube passes of a bundle", "node", of=SOURCED, quantity="tube passes"),
+        Key("plugged", "tubes of a bundle that are plugged: {count: 6, source: …}", "mapping", of=PLUGGED),
+        Key("effective length", "length of a tube that transfers heat", "node", of=SOURCED, quantity="length"),
     ),
 )
 DEPOSIT = Description(
@@ -187,6 +200,21 @@ DEPOSIT = Description(
             required=True,
         ),
         Key("narrows", "whether it narrows the bore", "flag"),
+    ),
+)
+FINS = Description(
+    "fins",
+    "fins on the surface that a film acts on",
+    (
+        Key("shape", "annular or straight", "choice", choices=("annular", "straight"), required=True),
+        Key("height", "from the root to the tip", "node", of=SOURCED, quantity="fin height", required=True),
+        Key("thickness", "thickness of a fin", "node", of=SOURCED, quantity="fin thickness", required=True),
+        Key("pitch", "distance of neighbouring fins at the root", "node", of=SOURCED, quantity="fin pitch"),
+        Key("count", "straight fins around a tube, in place of the pitch", "node", of=SOURCED, quantity="fins"),
+        Key("material", "material card of the fins", "name"),
+        Key("conductivity", "stated conductivity of the fins", "node", of=SOURCED, quantity="wall conductivity"),
+        Key("tip", "whether the tip exchanges heat", "choice", choices=("convective", "adiabatic")),
+        Key("method", "method of the fin efficiency", "name"),
     ),
 )
 
@@ -209,7 +237,7 @@ TERM = Description(
         Key("with", "what the situation needs and the geometry does not give", "mapping"),
         Key("coefficient", "stated film coefficient", "node", of=SOURCED, quantity="film coefficient"),
         Key("resistance", "stated resistance per area", "node", of=SOURCED, quantity="area resistance"),
-        Key("on", "surface it is stated on: inside, outside, outside of <wall>", "name"),
+        Key("on", "surface it is stated on: inside, outside, outside of <wall>, bare, total finned", "name"),
         Key("temperature", "bulk temperature of a stated film", "node", of=SOURCED, quantity="temperature"),
         Key("material", "material card of a wall", "name"),
         Key("conductivity", "stated wall conductivity", "node", of=SOURCED, quantity="wall conductivity"),
@@ -231,8 +259,8 @@ TERM = Description(
         Key("scales with", "factor on a stated value, as a relation", "relation"),
         Key("growth", "fouling growth", "node", later=True),
         Key("fouling specified as", "fouling of the whole unit", "node", later=True),
-        Key("fins", "fins on the surface", "node", later=True),
-        Key("vapour velocity", "velocity of a vapour", "node", later=True),
+        Key("fins", "fins on the surface that the film acts on", "mapping", of=FINS),
+        Key("vapour velocity", "speed of a condensing vapour", "node", of=SOURCED, quantity="vapour velocity"),
     ),
 )
 # Which keys a term of each kind may have: a key that would have no effect is a fault.
@@ -243,11 +271,13 @@ TERM_KEYS = {
         "situation",
         "method",
         "with",
+        "vapour velocity",
         *_STATED,
         "temperature",
         "includes",
         "holds for",
         "scales with",
+        "fins",
     ),
     "fouling": (*_STATED, "deposit"),
     "wall": ("material", "conductivity", "thickness", "outside diameter", "resistance", "on"),
@@ -261,6 +291,7 @@ TERM_CONFLICTS = (
     ("coefficient", "situation"),
     ("coefficient", "method"),
     ("coefficient", "with"),
+    ("coefficient", "vapour velocity"),
     ("resistance", "situation"),
     ("resistance", "method"),
     ("resistance", "with"),
@@ -285,7 +316,7 @@ REPORT = Description(
     "report",
     "how results are reported",
     (
-        Key("U on", "surface of the U: inside, outside, outside of <wall>", "name", required=True),
+        Key("U on", "surface of the U: inside, outside, outside of <wall>, bare, total finned", "name", required=True),
         Key("units", "SI, US customary, or a unit per quantity", "node"),
     ),
 )

@@ -17,6 +17,7 @@ from calcbook.calcfile.calculation import (
     Criterion,
     Deposit,
     Derived,
+    Fins,
     FluidText,
     Geometry,
     Given,
@@ -394,6 +395,9 @@ class _Reader:
         except Faults as faults:
             self.collector.take(faults.faults)
             return None
+        except QuantityFault as error:
+            self.collector.add(error.code, place, error.message, found=error.found, expected=error.expected)
+            return None
         source = f"calculation {link.calculation} revision {link.revision}, {link.result}, digest {link.digest[:12]}"
         value = Value(link.text, place, "", quantity, source, True)
         tolerance = self.tolerance(fields.node("tolerance"), quantity)
@@ -564,7 +568,14 @@ class _Reader:
             self.value(fields.node("flow"), described.FLOW),
             fields.text("phase"),
             key.place,
+            self.non_condensable(fields.node("non-condensable")),
         )
+
+    def non_condensable(self, node: Node | None) -> Value | None:
+        if node is None:
+            return None
+        fields = read_mapping(node, described.NON_CONDENSABLE, self.collector, node.place)
+        return self.value(fields.node("mole fraction"))
 
     def fluid(self, node: Node | None) -> FluidText | None:
         """A fluid, or None where there is none or it has a fault."""
@@ -723,10 +734,25 @@ class _Reader:
         dimensions = {
             name: value
             for name in fields
-            if name != "shape"
+            if name not in ("shape", "plugged")
             if (value := self.value(fields.node(name))) is not None
         }
+        for other in ("tubes", "passes", "plugged"):
+            self.refuse_pair(fields, "parallel", other)
+        plugged = self.plugged(fields.node("plugged"))
+        if plugged is not None:
+            dimensions["plugged"] = plugged
         return Geometry(fields.text("shape"), dimensions, node.place)
+
+    def plugged(self, node: Node | None) -> Value | None:
+        """The count of plugged tubes with its source."""
+        if node is None:
+            return None
+        fields = read_mapping(node, described.PLUGGED, self.collector, node.place)
+        scalar = fields.scalar("count")
+        if scalar is None:
+            return Value("", node.place, is_broken=True)
+        return self.scalar_value(scalar, fields.text("source"), "source" in fields)
 
     def terms(self, node: Node | None) -> tuple[Term, ...]:
         result: list[Term] = []
@@ -771,6 +797,7 @@ class _Reader:
             "outside diameter",
             "emissivity",
             "surroundings",
+            "vapour velocity",
         )
         values = {key: value for key in value_keys if (value := self.value(fields.node(key))) is not None}
         return Term(
@@ -782,6 +809,7 @@ class _Reader:
             values=values,
             with_values=self.with_values(fields.node("with")),
             deposit=self.deposit(fields.node("deposit")),
+            fins=self.fins(fields.node("fins")),
             includes=self.names_of(fields.node("includes")),
             holds_for=self.range_of(fields.node("holds for")),
             scales_with=self.factor(fields.scalar("scales with")),
@@ -885,6 +913,21 @@ class _Reader:
             self.value(fields.node("thickness")),
             self.value(fields.node("conductivity")),
             fields.text("narrows") in ("yes", "true"),
+            node.place,
+        )
+
+    def fins(self, node: Node | None) -> Fins | None:
+        if node is None:
+            return None
+        fields = read_mapping(node, described.FINS, self.collector, node.place)
+        self.refuse_pair(fields, "material", "conductivity")
+        self.refuse_pair(fields, "pitch", "count")
+        figures = ("height", "thickness", "pitch", "count", "conductivity")
+        return Fins(
+            fields.text("shape"),
+            {key: value for key in figures if (value := self.value(fields.node(key))) is not None},
+            {key: fields.text(key) for key in ("material", "tip", "method") if key in fields},
+            {key: fields.place_of(key) for key in fields},
             node.place,
         )
 

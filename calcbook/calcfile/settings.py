@@ -68,16 +68,21 @@ def _value(node: Node | None, collector: Collector) -> Value | None:
             return None
         scalar, source, has_source = found, fields.text("source"), "source" in fields
     if not isinstance(scalar, Scalar):
-        collector.add("value-not-text", node.place, "a number with its unit is wanted here")
+        collector.add(
+            "value-not-text",
+            node.place,
+            "a number with its unit is wanted here",
+            found="a list",
+            expected="{value: 101.3 kPa, source: …}",
+        )
         return None
     try:
-        return Value(
-            scalar.text, scalar.place, quantity=read_any(scalar.text), source=source, has_source=has_source
-        )
+        place = scalar.part(1, len(scalar.text) + 1)
+        return Value(scalar.text, place, quantity=read_any(scalar.text), source=source, has_source=has_source)
     except QuantityFault as error:
         collector.add(
             error.code,
-            scalar.place,
+            scalar.part(error.column, error.end_column),
             error.message,
             found=error.found,
             expected=error.expected,

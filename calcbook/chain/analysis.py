@@ -145,6 +145,9 @@ class _Analysis:
             for surface in self.chain.surfaces:
                 put(f"U_{condition} on {surface.name}", solution.number(table[f"U on {surface.name}"]),
                     "overall coefficient", f"overall coefficient on {surface.name}, {condition}")
+            if "U on bare" in table:
+                put(f"U_{condition} on bare", solution.number(table["U on bare"]), "overall coefficient",
+                    f"overall coefficient on bare, {condition}")
             put(f"UA_{condition}", solution.number(table["UA"]), "conductance", f"conductance, {condition}")
             if "heat flux" in table:
                 put(f"heat_flux_{condition}", solution.number(table["heat flux"]), "heat flux", f"heat flux, {condition}")

@@ -1,4 +1,4 @@
-"""What Newton's method leaves open, bracketed: in Q, with which the summed drop rises, and drop by drop in it.
+"""What Newton's method leaves open, bracketed: in Q, with which the summed drop rises, and drop by drop.
 
 A law that jumps at a joint can have no root there: then the side with the lower coefficient is held, both
 coefficients are kept, and the caller raises an open item. All samples are bracketed together.
@@ -32,13 +32,28 @@ JOINT_GAP = 1e-7
 def bracket(engine: Engine, samples: Array) -> Array:
     """Close some samples; writes flow and drops; returns which have an answer."""
     settled = np.zeros(len(samples), dtype=bool)
+    waiting = np.flatnonzero(_have_values(engine, samples))
     for _ in range(1 + len(engine.moving)):
-        places = np.flatnonzero(~settled)
-        settled[places] = _found(engine, samples[places])
-        places = np.flatnonzero(~settled)
-        if not len(places) or not _hold_lower_sides(engine, samples[places]):
+        if not len(waiting):
+            break
+        settled[waiting] = _found(engine, samples[waiting])
+        waiting = waiting[~settled[waiting]]
+        if not len(waiting) or not _hold_lower_sides(engine, samples[waiting]):
             break
     return settled
+
+
+def _have_values(engine: Engine, samples: Array) -> Array:
+    """Which samples have a value of every law near no drop: without one there is nothing to seek."""
+    lowest, highest = temperature_range(engine, samples)
+    drops = np.tile(
+        np.copysign(1e-6 * (highest - lowest), engine.difference[samples]), (len(engine.moving), 1)
+    )
+    known = np.isfinite(engine.difference[samples] + engine.still[samples])
+    for number in range(len(drops)):
+        carried, _, _ = engine.carried(number, drops, np.copysign(1.0, drops[number]), samples)
+        known &= ~np.isnan(carried)
+    return known
 
 
 def _found(engine: Engine, samples: Array) -> Array:
@@ -97,7 +112,8 @@ def _flow_bounds(engine: Engine, samples: Array, excess: Excess) -> tuple[Array,
 def _drops(engine: Engine, samples: Array, flow: Array) -> Array:
     """The drop of every moving element when it carries a heat flow; at most the whole range of temperatures.
 
-    Where a law has no value (a fluid beyond its data), the root is taken to lie nearer to no drop.
+    Where a law has no value (a fluid beyond its data), the root is taken to lie nearer to no drop; at no
+    drop itself nothing is carried, whatever the coefficient.
     """
     lowest, highest = temperature_range(engine, samples)
     span = highest - lowest
@@ -109,7 +125,8 @@ def _drops(engine: Engine, samples: Array, flow: Array) -> Array:
         def excess(drop: Array, number: int = number, trial: Array = trial) -> Array:
             trial[number] = drop
             carried, _, _ = engine.carried(number, trial, flow, samples)
-            return np.where(np.isnan(carried), np.copysign(np.inf, drop), carried - flow)
+            beyond = np.where(drop == 0.0, -flow, np.copysign(np.inf, drop))
+            return np.where(np.isnan(carried), beyond, carried - flow)
 
         drops[number] = _root(excess, np.where(down, -span, 0.0), np.where(up, span, 0.0))
     return drops

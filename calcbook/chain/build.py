@@ -8,6 +8,7 @@ from calcbook.calcfile import Calculation
 from calcbook.calcfile.calculation import Derived, Term, Value
 from calcbook.calcfile.links import CURRENT
 from calcbook.chain.films import FilmScope
+from calcbook.chain.fins import FinnedSide, lay_out_fins, lay_out_fins_layer
 from calcbook.chain.scope import Scope
 from calcbook.chain.streams import lay_out_stream
 from calcbook.chain.surfaces import Shape, Wall, lay_out_shape
@@ -49,6 +50,7 @@ class _Builder:
         self.streams: dict[str, StreamState] = {}
         self.checks: list[ChainCheck] = []
         self.early: frozenset[str] = frozenset()
+        self.finned: FinnedSide | None = None
 
     def chain(self) -> Chain | None:
         calculation, scope = self.calculation, self.scope
@@ -64,6 +66,7 @@ class _Builder:
         if not self._order_holds(terms) or shape is None:
             self._mark_unused()
             return None
+        shape, self.finned = lay_out_fins(scope, terms, shape)
         self.early = frozenset(scope.steps)
         elements = self._elements(terms, shape)
         basis = shape.surface_named(scope, calculation.report.u_on, calculation.report.u_on_place) \
@@ -239,7 +242,53 @@ class _Builder:
             elements.append(self._wall(wall, shape) if wall is not None else self._layer(term, shape, at))
         if any(element is None for element in elements):
             return None
-        return tuple(element for element in elements if element is not None)
+        return self._with_fins(tuple(element for element in elements if element is not None), shape)
+
+    def _with_fins(self, elements: tuple[Element, ...], shape: Shape) -> tuple[Element, ...] | None:
+        """The fins put between the wall and the fouling of the film that has them."""
+        finned = self.finned
+        if finned is None:
+            return elements
+        inside = finned.side == "inside"
+        group = elements[0] if inside else elements[-1]
+        assert isinstance(group, Group)
+        part = elements[1:] if inside else elements[-2::-1]
+        fouling: list[Layer] = []
+        for element in part:
+            if not isinstance(element, Layer) or element.kind != "fouling":
+                break
+            fouling.append(element)
+        for element in part[len(fouling):]:
+            if not isinstance(element, Layer) or element.kind == "wall":
+                break
+            if element.kind == "fouling":
+                term = next(term for term in self.calculation.resistances if term.name == element.name)
+                self.collector.add("term-order", term.place, f"`{element.name}` does not lie next to the film with fins",
+                                   expected="only fouling between the fins and their film")
+                return None
+        layer = self._fins_layer(finned, shape, group, fouling)
+        if layer is None:
+            return None
+        place = 1 + len(fouling) if inside else len(elements) - 1 - len(fouling)
+        return (*elements[:place], layer, *elements[place:])
+
+    def _fins_layer(self, finned: FinnedSide, shape: Shape, group: Group, fouling: list[Layer]) -> Layer | None:
+        first, second = f"{finned.name}/T_1", f"{finned.name}/T_2"
+        if not {"material", "conductivity"} & {*finned.term.texts, *finned.term.values}:
+            self.collector.add("need-missing", finned.term.place, f"the {finned.name} have no conductivity",
+                               expected="material: <card> or conductivity: … W/(m K)")
+            return None
+        conductivity, table = self._conductivity(finned.term, first, second)
+        if not conductivity:
+            return None
+        follows = follows_temperature(group)
+        layer = lay_out_fins_layer(self.scope, self.library, finned, shape, group, fouling, conductivity,
+                                   (first, second) if table is not None else ("", ""), follows)
+        if layer is None or table is None:
+            return layer
+        self.scope.assume(f"{finned.name}/conductivity", "The fins have one conductivity: the mean of their card between the root"
+                          " and the mean temperature of the finned surface.", "a fin card takes a constant conductivity", finned.name)
+        return replace(layer, checks=layer.checks + self._material_checks(finned.term, table, first, second))
 
     def _surface(self, term: Term, shape: Shape, default: int) -> int | None:
         name = term.texts.get("on", "")
@@ -250,7 +299,8 @@ class _Builder:
         return default
 
     def _layer(self, term: Term, shape: Shape, at: int) -> Layer | None:
-        surface = self._surface(term, shape, at)
+        default = self._wetted_surface(term, shape) if term.kind == "fouling" else at
+        surface = self._surface(term, shape, default if default is not None else at)
         if surface is None:
             return None
         if term.deposit is not None:
@@ -270,14 +320,27 @@ class _Builder:
             return None
         return Layer(term.name, term.kind, surface, resistance)
 
+    def _wetted_surface(self, term: Term, shape: Shape) -> int | None:
+        """The finned surface for the fouling that lies on it, else None."""
+        terms = self.calculation.resistances
+        walls = [index for index, other in enumerate(terms) if other.kind == "wall"]
+        if self.finned is None or not walls:
+            return None
+        side = "inside" if terms.index(term) < walls[0] else "outside"
+        return shape.wetted(side) if side == self.finned.side else None
+
     def _deposit(self, term: Term, shape: Shape, surface: int) -> Layer | None:
         assert term.deposit is not None
+        if term.deposit.narrows and self._wetted_surface(term, shape) is not None:
+            self.collector.add("key-conflict", term.deposit.place, "a deposit on fins cannot narrow the flow",
+                               found="narrows: yes", expected="narrows: no on a finned surface")
+            return None
         thickness = self.scope.value(term.deposit.thickness, "thickness", term.name, "thickness")
         conductivity = self.scope.value(term.deposit.conductivity, "wall conductivity", term.name, "conductivity")
         if not thickness or not conductivity:
             return None
         inputs = {"t": thickness, "k": conductivity}
-        if shape.name != "tube":
+        if shape.name != "tube" or not shape.surfaces[surface].diameter:
             text = "t/k"
         elif surface == 0:
             text, inputs["d_i"] = "d_i*ln(d_i/(d_i - 2*t))/(2*k)", shape.surfaces[0].diameter
@@ -375,7 +438,7 @@ class _Builder:
     # -- groups -------------------------------------------------------------------------------------
 
     def _group(self, term: Term, shape: Shape, side: str) -> Group | None:
-        surface = 0 if side == "inside" else len(shape.surfaces) - 1
+        surface = shape.wetted(side)
         parts = term.branches if term.kind == "parallel" else (term,)
         scope = self.scope
         for mark, quantity in (("T_s", "temperature"), ("q", "heat flux")):
@@ -441,9 +504,12 @@ class _Builder:
             return None
         self.scope.cards[f"situation {situation.id}"] = situation.digest_text
         dimensions, moved = self._wetted(shape, side)
+        if self.finned is not None and self.finned.side == side:
+            dimensions = {**dimensions, **self.finned.figures}
         film = FilmScope(self.scope, self.library, term, group, dimensions, stream, situation, deposit_surface=moved)
         self._check_with(term, situation, film)
         branch = film.branch()
+        self.checks += film.vapour_checks()
         for candidate in branch.candidates if branch is not None else ():
             self._card_state(candidate.method.id, candidate.method.state.status, candidate.method.state.successor, term)
         return branch
@@ -480,6 +546,8 @@ class _Builder:
 
     def _check_with(self, term: Term, situation, film: FilmScope) -> None:  # type: ignore[no-untyped-def]
         """Every entry of `with:` must be asked for by the situation or one of its methods."""
+        if not term.with_values:
+            return
         asked = {need.symbol for need in situation.needs} | {need.quantity.name for need in situation.needs}
         methods = [term.texts["method"]] if "method" in term.texts else situation.methods
         for method in methods:
@@ -629,10 +697,12 @@ STATED = Method(
 def follows_temperature(element: Element) -> bool:
     """Whether an element's resistance depends on its own temperatures or flux."""
     if isinstance(element, Layer):
-        return bool(element.first_temperature)
+        return bool(element.first_temperature) or element.follows_film
     if any(branch.reference != element.bulk for branch in element.branches):
         return True
     moving = {element.surface_temperature, element.flux}
+    if any(bound in moving for branch in element.branches for row in branch.choice for bound in row.inputs.values()):
+        return True
     return any(
         bound in moving
         for branch in element.branches

@@ -24,8 +24,7 @@ class Circuit:
         return self._mark(self.basis)
 
     def _mark(self, surface: int) -> str:
-        last = len(self.shape.surfaces) - 1
-        return "i" if surface == 0 and last > 0 else ("o" if surface == last else str(surface))
+        return self.shape.mark(surface)
 
     def lay_out(self) -> tuple[tuple[ChainStep, ...], dict[str, str]]:
         """The steps in order, and result names with the ids that hold them."""
@@ -45,10 +44,14 @@ class Circuit:
                                   {f"U_{self.basis_mark}": coefficient, f"A_{self.basis_mark}": area,
                                    f"A_{self._mark(index)}": surface.area}, "areas", "overall coefficient")
             self.results[f"U on {surface.name}"] = name
+        if self.shape.finned_side:
+            bare = self.shape.surfaces[self.shape.bare(self.shape.finned_side)]
+            self.results["U on bare"] = self.results[f"U on {bare.name}"]
         self.results["UA"] = self._step("UA", "UA", "conductance", f"U_{self.basis_mark}*A_{self.basis_mark}",
                                         {f"U_{self.basis_mark}": coefficient, f"A_{self.basis_mark}": area}, "circuit",
                                         "conductance")
         self._heat_flow(coefficient)
+        self._root_temperatures()
         steps = tuple(step for name, step in self.scope.steps.items() if name not in self.before)
         return steps, self.results
 
@@ -64,6 +67,19 @@ class Circuit:
         self.results["heat flow"] = self._step("Q", "Q", "heat flow, inside to outside", f"q_{mark}*A_{mark}",
                                                {f"q_{mark}": flux, f"A_{mark}": self.shape.surfaces[self.basis].area},
                                                "circuit", "heat flow")
+
+    def _root_temperatures(self) -> None:
+        """Where a film has fins, its surface temperature at their root: there it lies furthest from the bulk."""
+        for fins in self.elements:
+            if not isinstance(fins, Layer) or not fins.film:
+                continue
+            group = next(element for element in self.elements if element.name == fins.film)
+            assert isinstance(group, Group)
+            if self.results.get("heat flux"):
+                self.results[f"T root {group.name}"] = self._step(
+                    f"T root {group.name}", "T_r", f"surface temperature of {group.name} at the root of the fins",
+                    "T_b + (T_s - T_b)/eta_o",
+                    {"T_b": group.bulk, "T_s": group.surface_temperature, "eta_o": fins.efficiency}, "fins", "temperature")
 
     @property
     def _basis_name(self) -> str:

@@ -6,13 +6,13 @@ from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field, replace
 
 from calcbook.calcfile.calculation import Term, Value
-from calcbook.chain.fluids import LiquidOperation
+from calcbook.chain.fluids import FixedOperation, LiquidOperation, PropertyOperation
 from calcbook.chain.scope import Scope
 from calcbook.chain.types import Branch, Candidate, ChainCheck, ChainStep, ChoiceRow, StreamState
 from calcbook.faults import Collector, Faults, shown
 from calcbook.formulas import Relation, parse_expression
 from calcbook.library import Library, Program
-from calcbook.library.cards import Method, Need, Situation
+from calcbook.library.cards import Limit, Method, Need, Situation
 from calcbook.library.programs import ProgramStep
 from calcbook.library.reading import choice_number, vocabulary
 from calcbook.quantities import DIMENSIONLESS
@@ -26,7 +26,19 @@ PROPERTY_SYMBOLS = {
 }
 # Quantities without a meaning of their own: a step of that symbol is called by its symbol.
 PLAIN = ("ratio", "number", "angle")
-PLACE_MARKS = {"bulk": "b", "film": "f", "surface": "s"}
+PLACE_MARKS = {
+    "bulk": "b",
+    "film": "f",
+    "surface": "s",
+    "saturated liquid": "l",
+    "saturated vapour": "g",
+    "liquid film": "lf",
+}
+# The side of saturation that properties are taken on at places of a fluid that changes phase.
+SATURATED_SIDES = {"saturated liquid": "liquid", "saturated vapour": "gas", "liquid film": "liquid"}
+# What belongs to the saturation line of a fluid, with its symbol.
+SATURATION_FIGURES = {"latent heat": "h_fg", "surface tension": "sig", "saturation pressure": "p_sat"}
+FIXED_FIGURES = {"critical pressure": "p_c", "molar mass": "M"}
 
 
 @dataclass
@@ -67,6 +79,13 @@ class FilmScope:
             return self.bulk
         if place == "surface":
             return self.surface
+        if place in ("saturated liquid", "saturated vapour"):
+            return self.saturation()
+        if place == "liquid film":
+            return self.scope.relation_step(f"{self.owner}/liquid film/T", "T_lf", "liquid film temperature", self.owner,
+                                            parse_expression("(T_s + T_sat)/2"),
+                                            {"T_s": self.surface, "T_sat": self.saturation()},
+                                            "mean of surface and saturation", "temperature")
         return self.scope.relation_step(f"{self.owner}/film/T", "T_f", "film temperature", self.owner,
                                         parse_expression("(T_s + T_b)/2"), {"T_s": self.surface, "T_b": self.bulk},
                                         "mean of surface and bulk", "temperature")
@@ -79,6 +98,11 @@ class FilmScope:
         step = f"stream {stream.name}/{name}" if place == "bulk" else f"{self.owner}/{place}/{name}"
         if step in self.scope.steps:
             return step
+        if not stream.fluid.has(name):
+            self._fault_property(name)
+            return ""
+        if place in SATURATED_SIDES:
+            return self.on_saturation(step, name, f"{symbol}_{PLACE_MARKS[place]}", f"{name} of {place}", place)
         inputs = stream.state_inputs(self.temperature(place))
         if place != "bulk":
             inputs["liquid"] = self.flag("fluid liquid")
@@ -86,6 +110,117 @@ class FilmScope:
         title = name if place == "bulk" else f"{name} at {place} temperature"
         return self.scope.step(step, shown_symbol, title, self.owner, stream.operation(name, place != "bulk"), inputs,
                                stream.fluid_name, vocabulary()[name])
+
+    def _fault_property(self, name: str) -> None:
+        """A table or constants without a property that a film asks for: said once per term."""
+        assert self.stream is not None
+        if name in self.missing:
+            return
+        self.missing.add(name)
+        text = self.stream.fluid.text
+        self.scope.collector.add("property-missing", text.place, f"{text.name} has no {name}, which `{self.owner}` needs",
+                                 found=", ".join(column for column in text.columns if column != "T"),
+                                 expected=f"{name}: ... with its unit")
+
+    # -- the saturation line --------------------------------------------------------------------------
+
+    def saturation(self) -> str:
+        """The id of the stream's saturation temperature; a fault where the stream is not saturated."""
+        assert self.stream is not None
+        if self.stream.saturation:
+            return self.stream.saturation
+        if "saturation" not in self.missing:
+            self.missing.add("saturation")
+            self.scope.collector.add(
+                "stream-not-saturated", self.stream.place, f"`{self.owner}` needs a saturated stream",
+                found=f"stream {self.stream.name} with its own temperature",
+                expected="temperature: saturation with the pressure and phase of a pure fluid")
+        return self.scope.unread(vocabulary()["saturation temperature"])
+
+    def on_saturation(self, step: str, name: str, symbol: str, title: str, place: str) -> str:
+        """The id of a property on the saturation line, at the temperature of a place."""
+        assert self.stream is not None
+        stream, temperature = self.stream, self.temperature(place)
+        operation = PropertyOperation(stream.fluid, name, SATURATED_SIDES.get(place, "liquid"), False, False)
+        return self.scope.step(step, symbol, title, self.owner, operation, {"T": temperature}, stream.fluid_name,
+                               vocabulary()[name])
+
+    def pressure(self) -> str:
+        """The id of the stream's pressure: as stated, or the vapour pressure at its temperature."""
+        assert self.stream is not None
+        return self.stream.pressure or self.saturation_figure("saturation pressure", "saturated liquid")
+
+    def saturation_figure(self, name: str, place: str) -> str:
+        """The id of a figure of the saturation line, at saturation or at another place."""
+        assert self.stream is not None
+        place = place if place not in ("", "bulk") else "saturated liquid"
+        own = place in ("saturated liquid", "saturated vapour")
+        step = f"stream {self.stream.name}/{name}" if own else f"{self.owner}/{place}/{name}"
+        symbol = SATURATION_FIGURES[name]
+        if step in self.scope.steps:
+            return step
+        return self.on_saturation(step, name, symbol if own else f"{symbol}_{PLACE_MARKS[place]}",
+                                  name if own else f"{name} at {place} temperature", place)
+
+    def fixed_figure(self, name: str) -> str:
+        """The id of a figure that the fluid has in every state."""
+        assert self.stream is not None
+        self.saturation()
+        return self.scope.step(f"stream {self.stream.name}/{name}", FIXED_FIGURES[name], name, self.owner,
+                               FixedOperation(self.stream.fluid, name), {}, self.stream.fluid_name, vocabulary()[name])
+
+    def saturated(self, name: str, place: str) -> str:
+        """The id of what only a fluid on its saturation line has; empty for every other quantity."""
+        if self.stream is None:
+            return ""
+        if name == "saturation temperature":
+            return self.saturation()
+        if name == "pressure":
+            return self.pressure()
+        if name in SATURATION_FIGURES:
+            return self.saturation_figure(name, place)
+        if name in FIXED_FIGURES:
+            return self.fixed_figure(name)
+        if name == "reduced pressure":
+            return self.scope.relation_step(
+                f"stream {self.stream.name}/reduced pressure", "p_r", name, self.owner, parse_expression("p/p_c"),
+                {"p": self.pressure(), "p_c": self.fixed_figure("critical pressure")}, "critical pressure", name)
+        return ""
+
+    def vapour_checks(self) -> tuple[ChainCheck, ...]:
+        """What speaks against a pure vapour at rest, for a film that condenses one; absent figures are assumed."""
+        assert self.stream is not None and self.situation is not None
+        stated = self.term.values.get("vapour velocity")
+        if self.situation.changes_phase != "condensing":
+            if stated is not None:
+                self.scope.collector.add("key-unknown", stated.place, f"`{self.owner}` does not condense a vapour",
+                                         found="vapour velocity", expected="a situation that condenses")
+            return ()
+        checks = []
+        share = self.stream.non_condensable
+        if share:
+            checks.append(self._none_of("non-condensable gas", "y_n", share, "range", "mole fraction",
+                                        "the method is for a pure vapour; a few per cent of gas can halve the coefficient"))
+        else:
+            self.scope.assume(f"{self.owner}/pure", f"The vapour of {self.stream.name} is pure.",
+                              "no non-condensable gas is stated", self.owner)
+        if self.situation.flow == "forced":
+            return tuple(checks)
+        speed = self.scope.value(stated, "vapour velocity", self.owner, "vapour velocity")
+        if speed:
+            checks.append(self._none_of("vapour at rest", "v_g", speed, "caution", "vapour velocity",
+                                        "the method is for a vapour at rest; its shear thins or piles up the film"))
+        else:
+            self.scope.assume(f"{self.owner}/at rest", f"The vapour of {self.stream.name} is at rest.",
+                              "no vapour velocity is stated", self.owner)
+        return tuple(checks)
+
+    def _none_of(self, name: str, symbol: str, figure: str, level: str, kind: str, because: str) -> ChainCheck:
+        assert self.situation is not None
+        none = self.scope.constant(f"{self.owner}/no {kind}", 0.0, vocabulary()[kind].dimension)
+        limit = Limit(name, parse_expression(f"{symbol} <= none"), level, because, "common practice",
+                      "common practice", self.situation.where)
+        return ChainCheck(f"{self.owner} / vapour / {name}", self.owner, "vapour", limit, {symbol: figure, "none": none})
 
     # -- flow and geometry ----------------------------------------------------------------------------
 
@@ -159,6 +294,16 @@ class FilmScope:
                                         {"m": stream.mass_flow, "rho": density, "A_c": area},
                                         self.situation.id, "speed")
 
+    def flow_of_situation(self, symbol: str) -> str:
+        """The id of the stream's mass flow, or of the situation's flow area."""
+        assert self.stream is not None and self.situation is not None
+        if symbol == "A_c" and self.situation.flow_area is not None:
+            return self.local_step("flow area", "A_c", "flow area", self.situation.flow_area, "flow area")
+        if symbol == "m" and self.stream.mass_flow:
+            return self.stream.mass_flow
+        self._fault_flow("the stream has no mass flow", "flow: a mass flow on the stream")
+        return ""
+
     def _fault_flow(self, message: str, expected: str) -> None:
         if "flow" not in self.missing:
             self.missing.add("flow")
@@ -215,6 +360,11 @@ class FilmScope:
         for group in self.situation.groups:
             if group.symbol == symbol:
                 return self.group_step(group.quantity.name, place)
+        if symbol in ("m", "A_c"):
+            return self.flow_of_situation(symbol)
+        if symbol in ("q", "T_sat", "h_fg"):
+            return {"q": lambda: f"{self.group}/q", "T_sat": self.saturation,
+                    "h_fg": lambda: self.saturation_figure("latent heat", "")}[symbol]()
         self.scope.collector.add("symbol-unknown", self.situation.where, f"situation {self.situation.id}: `{symbol}`"
                                  " is neither a need, a group nor a property")
         return ""
@@ -262,6 +412,9 @@ class FilmScope:
             return self.property(name, place)
         if name == "heat flux":
             return f"{self.group}/q"
+        found = self.saturated(name, place)
+        if found:
+            return found
         if self.situation is not None:
             if name == "characteristic length":
                 return self.length()
@@ -300,9 +453,12 @@ class FilmScope:
         used = {bound for step in program.steps for bound in step.inputs.values()} | {program.result}
         complete = True
         for item in program.needs:
+            before = len(list(self.scope.collector))
             found = self.need(item.need)
             if not found:
-                if item.name in used:
+                if len(list(self.scope.collector)) > before:
+                    complete = False
+                elif item.name in used:
                     self.report_missing(item.need, f"1 {item.need.quantity.unit}")
                     complete = False
                 found = self.scope.constant(f"{self.owner}/{item.need.symbol} not given", float("nan"),

@@ -34,6 +34,7 @@ def stream_findings(chain: Chain, case: str, collector: Collector) -> tuple[Open
     values = dict(chain.constants) | chain.case_inputs(case)
     run(chain.steps, values)
     _check_surfaces(chain, values, collector)
+    _check_directions(chain, values, collector, case)
     items: list[OpenItem] = []
     for state in chain.streams.values():
         run([step for step in _all_steps(chain) if step.id in (state.temperature, state.pressure, state.fraction)
@@ -50,6 +51,22 @@ def stream_findings(chain: Chain, case: str, collector: Collector) -> tuple[Open
                 name = f"stream {state.name}/{finding.code}" + (f"/{case}" if case else "")
                 items.append(OpenItem(name, "state", f"{where}Stream {state.name}: {finding.message}."))
     return tuple(items)
+
+
+def _check_directions(chain: Chain, values: Mapping[str, object], collector: Collector, case: str) -> None:
+    """A film that condenses has the colder side opposite, a film that boils the hotter one."""
+    for here, opposite in ((chain.inner, chain.outer), (chain.outer, chain.inner)):
+        for branch in here.branches:
+            change = branch.situation.changes_phase if branch.situation is not None else ""
+            if not change or branch.reference not in values or opposite.bulk not in values:
+                continue
+            own, other = float(values[branch.reference]), float(values[opposite.bulk])  # type: ignore[arg-type]
+            if (own > other) if change == "condensing" else (own < other):
+                continue
+            where = f"case {case}: " if case else ""
+            collector.add("phase-change-direction", chain.streams[branch.stream].place,
+                          f"{where}{branch.name} is {change} at {celsius(own)}", found=f"the other side at {celsius(other)}",
+                          expected=f"the other side {'colder' if change == 'condensing' else 'hotter'}")
 
 
 def _all_steps(chain: Chain):  # type: ignore[no-untyped-def]
@@ -107,7 +124,7 @@ def _film_checks(chain: Chain, case: str, solution: Solution, group: Group, bran
     fraction = solution.number(state.fraction) if state.fraction else None
     fluid = state.fluid.state(pressure, fraction, state.phase)
     phase = state.phase or fluid.phase_at(solution.number(state.temperature))
-    surface = solution.number(group.surface_temperature)
+    surface = solution.number(chain.results.get(f"T root {group.name}", group.surface_temperature))
     checks = []
 
     def add(name: str, that: str, limit: float | None, inside: bool, sign: str, because: str) -> None:
@@ -120,7 +137,8 @@ def _film_checks(chain: Chain, case: str, solution: Solution, group: Group, bran
                                   case, that, figure, limit_text, surface, "K", "range", state_word, because,
                                   state.fluid_name, "independent library"))
 
-    if fluid.has_vapour_pressure:
+    phase_change = branch.situation.changes_phase if branch.situation is not None else ""
+    if fluid.has_vapour_pressure and not phase_change:
         boiling = fluid.saturation_temperature()
         if phase == "liquid":
             add("boils", "T_s < T_sat", boiling, boiling is not None and surface < boiling, "<",
@@ -129,7 +147,7 @@ def _film_checks(chain: Chain, case: str, solution: Solution, group: Group, bran
             add("condenses", "T_s > T_sat", boiling, surface > boiling, ">",
                 "the method is for a gas without condensing at the surface")
     freezing = fluid.freezing_temperature()
-    if phase == "liquid" and freezing is not None:
+    if (phase == "liquid" or phase_change) and freezing is not None:
         add("freezes", "T_s > T_freeze", freezing, surface > freezing, ">",
             "the method is for a liquid that does not freeze at the surface")
     return checks

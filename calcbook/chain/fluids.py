@@ -25,6 +25,15 @@ class FluidSource:
     _made: dict[float, Fluid] = field(default_factory=dict, compare=False, repr=False)
     _states: dict[tuple, FluidAtPressure] = field(default_factory=dict, compare=False, repr=False)
 
+    def has(self, name: str) -> bool:
+        """Whether the fluid can give a property: a table or constants give what they state.
+
+        The expansion coefficient follows from a table's densities; where it cannot, only limits miss it.
+        """
+        if self.text.kind not in ("table", "constants") or name == "expansion coefficient":
+            return True
+        return name in self.text.columns or (name == "viscosity" and bool(self.text.astm))
+
     def at_fraction(self, fraction: float | None) -> Fluid:
         """The fluid itself, or the mixture of that fraction. Raises ``PropertyFault``."""
         if self.fixed is not None:
@@ -88,6 +97,9 @@ class PropertyOperation:
         shape = np.broadcast_shapes(temperature.shape, *(item.shape for item in varying))
         flat = np.ascontiguousarray(np.broadcast_to(temperature, shape)).ravel()
         columns = np.stack([np.broadcast_to(item, shape).ravel() for item in varying])
+        if (columns == columns[:, :1]).all():
+            # The usual case: one state for all samples. Finding the different ones would sort them all.
+            return self._read([float(item) for item in columns[:, 0]], flat, read).reshape(shape)
         states, group = np.unique(columns, axis=1, return_inverse=True)
         result = np.empty(flat.shape)
         for index in range(states.shape[1]):
@@ -123,6 +135,50 @@ class LiquidOperation:
         return {symbol: np.zeros(np.shape(value)) for symbol in wanted}
 
 
+@dataclass(frozen=True)
+class BoilingOperation:
+    """The saturation temperature of a pure fluid at a pressure, from its vapour-pressure curve."""
+
+    source: FluidSource
+
+    @property
+    def symbols(self) -> tuple[str, ...]:
+        return ("p",)
+
+    def value(self, arguments: Mapping[str, Array]) -> Array:
+        pressure = np.asarray(arguments["p"], dtype=float)
+        return self.source.state(None, None, "liquid").boiling_temperature(pressure, outside="nan")
+
+    def slopes(self, arguments: Mapping[str, Array], value: Array, wanted: Iterable[str]) -> dict[str, Array]:
+        line = self.source.state(None, None, "liquid")
+        return {symbol: 1.0 / line.slope("saturation pressure", value, outside="nan") for symbol in wanted}
+
+
+@dataclass(frozen=True)
+class FixedOperation:
+    """A figure that a pure fluid has in every state: its critical pressure, its molar mass."""
+
+    source: FluidSource
+    name: str
+
+    @property
+    def symbols(self) -> tuple[str, ...]:
+        return ()
+
+    def value(self, arguments: Mapping[str, Array]) -> Array:
+        line = self.source.state(None, None, "liquid")
+        found = line.critical_pressure() if self.name == "critical pressure" else line.molar_mass()
+        return np.asarray(np.nan if found is None else found)
+
+    def slopes(self, arguments: Mapping[str, Array], value: Array, wanted: Iterable[str]) -> dict[str, Array]:
+        return {}
+
+
 def _is_liquid(state: FluidAtPressure, temperature: Array) -> Array:
+    """Along one pressure a liquid lies below all else: the coldest and the hottest sample settle most calls."""
+    known = temperature[~np.isnan(temperature)]
+    ends = {state.phase_at(float(item)) == "liquid" for item in (known.min(), known.max())} if known.size else {False}
+    if len(ends) == 1:
+        return np.full(temperature.shape, float(*ends))
     found = [state.phase_at(float(item)) == "liquid" for item in temperature.ravel()]
     return np.asarray(found, dtype=float).reshape(temperature.shape)

@@ -98,6 +98,9 @@ class _Trace:
             for group in (self.chain.inner, self.chain.outer):
                 for branch in group.branches:
                     self._film(group, branch)
+            for element in self.chain.elements:
+                if isinstance(element, Layer) and element.film:
+                    run(element.steps, self.values, self.slopes)
         run(self.chain.circuit, self.values, self.slopes)
         return {name: self._total(name, moved) for name in wanted}
 
@@ -116,17 +119,20 @@ class _Trace:
         """Slopes of the summed drops, then of every element's heat flow less Q, in unknowns and inputs."""
         total: Line = {}
         laws = []
+        fins: list[tuple[Layer, str, Line]] = []
         temperature = dict(self.slopes.get(self.chain.inner.bulk, {}))
         for number, element in enumerate(self.chain.elements):
             seed = f"{UNKNOWN}{number + 1}"
             total[seed] = ONE
-            law = (
-                self._group(element, seed)
-                if isinstance(element, Group)
-                else self._layer(element, seed, temperature)
-            )
-            laws.append(law)
+            if isinstance(element, Group):
+                laws.append(self._group(element, seed))
+            elif element.film:
+                # Fins take the coefficient of their film, which may come after them.
+                fins.append((element, seed, temperature))
+            else:
+                laws.append(self._layer(element, seed, temperature))
             temperature = _added(temperature, {seed: -ONE})
+        laws += [self._layer(*one) for one in fins]
         total = _added(total, self.slopes.get(self.chain.inner.bulk, {}), -ONE)
         return [_added(total, self.slopes.get(self.chain.outer.bulk, {})), *laws]
 
@@ -139,6 +145,7 @@ class _Trace:
             ):
                 self.values[name] = self._solved(name)
                 self.slopes[name] = line
+        if layer.first_temperature or layer.film:
             run(layer.steps, self.values, self.slopes)
         flow, area = self._solved("solution/Q"), self.chain.surfaces[layer.surface].area
         resistance = self.values[layer.resistance] / self.values[area]

@@ -175,7 +175,9 @@ class Engine:
         self.values: dict[str, Array] = dict(chain.constants)  # type: ignore[arg-type]
         self.values[SERVICE_FLAG] = np.asarray(float(condition != CLEAN))
         self.values.update(inputs)
-        self.moving = [element for element in chain.elements if follows_temperature(element)]
+        # Fins follow the coefficient of their film: outside they are closed after it, though they stand before it.
+        moving = [element for element in chain.elements if follows_temperature(element)]
+        self.moving = sorted(moving, key=lambda element: _is_outer_fins(chain, element))
         # The number of a moving element; elements themselves are compared by all they hold, which takes long.
         self.numbers = {element.name: number for number, element in enumerate(self.moving)}
         self.foreign = any(
@@ -255,6 +257,8 @@ class Engine:
             if element.name in self.numbers:
                 continue
             if isinstance(element, Layer):
+                if element.film:
+                    self._run_still_fins(element)
                 resistance = self.full(element.resistance) / self.areas[element.name]
             else:
                 total = np.zeros(self.size)
@@ -266,6 +270,18 @@ class Engine:
         self.difference = self.full(self.chain.inner.bulk) - self.full(self.chain.outer.bulk)
         self.flow = np.zeros(self.size)
         self.drops = np.zeros((len(self.moving), self.size))
+
+    def _finned_group(self, fins: Layer) -> Group:
+        """The group whose film has these fins."""
+        return self.chain.inner if fins.film == self.chain.inner.name else self.chain.outer
+
+    def _run_still_fins(self, fins: Layer) -> None:
+        """Evaluate fins whose film and conductivity do not follow temperatures."""
+        group = self._finned_group(fins)
+        branch = group.branches[0]
+        coefficient, _ = self.film(group, branch, self.everything, None, None, False)
+        self.values[branch_coefficient(group, branch.name)] = self._as_input(coefficient)
+        run(fins.steps, self.values)
 
     def resolution(self, drops: Array, samples: Array) -> Array:
         """How well the drops of films follow from temperatures, relative to the smallest of them."""
@@ -421,6 +437,8 @@ class Engine:
         area = self.part(self.areas[element.name], samples)
         if isinstance(element, Group):
             return self._carried_by_films(element, number, drops, flow, samples, area, wants_slopes)
+        if element.film:
+            return self._carried_by_fins(element, number, drops, flow, samples, area, wants_slopes)
         return self._carried_by_wall(element, number, drops, flow, samples, area, wants_slopes)
 
     def _carried_by_films(
@@ -479,6 +497,45 @@ class Engine:
         by_drop[number] = area / resistance - by_second
         return total, by_drop, -by_level * resistance_before
 
+    def _carried_by_fins(
+        self,
+        fins: Layer,
+        number: int,
+        drops: Array,
+        flow: Array,
+        samples: Array,
+        area: Array,
+        wants_slopes: bool,
+    ) -> tuple[Array, dict[int, Array], Array]:
+        group = self._finned_group(fins)
+        branch, held = group.branches[0], branch_coefficient(group, group.branches[0].name)
+        sign, film = outward(group), self.numbers.get(group.name)
+        surface = flux = None
+        if film is not None:
+            surface, flux = self.at(group.bulk, samples) + sign * drops[film], np.abs(flow) / area
+        coefficient, film_slopes = self.film(group, branch, samples, surface, flux, wants_slopes)
+        first, before, resistance_before = self._before(fins, drops, flow, samples)
+        given = {held: coefficient}
+        if fins.first_temperature:
+            given |= {fins.first_temperature: first, fins.second_temperature: first - drops[number]}
+        plan = self._plan(fins.resistance, fins.steps, tuple(given))
+        resistance, slopes = self._evaluated(plan, samples, given, wants_slopes)
+        total = drops[number] * area / resistance
+        if not wants_slopes:
+            return total, {}, total
+        zero = np.zeros(len(samples))
+        by_coefficient = -total / resistance * slopes.get(held, zero)
+        by_second = -total / resistance * slopes.get(fins.second_temperature, zero)
+        by_level = by_second - total / resistance * slopes.get(fins.first_temperature, zero)
+        by_drop = {earlier: -by_level for earlier in before}
+        by_drop[number] = area / resistance - by_second
+        by_flow = -by_level * resistance_before
+        if film is not None:
+            by_surface = film_slopes.get(group.surface_temperature, zero)
+            by_drop[film] = by_drop.get(film, zero) + by_coefficient * by_surface * sign
+            by_flow = by_flow + by_coefficient * film_slopes.get(group.flux, zero) * np.sign(flow) / area
+        return total, by_drop, by_flow
+
     def _before(
         self, wall: Layer, drops: Array, flow: Array, samples: Array
     ) -> tuple[Array, list[int], Array]:
@@ -516,11 +573,14 @@ class Engine:
                 self.values[group.flux] = self._as_input(np.abs(self.flow) / self.areas[group.name])
             for branch in group.branches:
                 self._finish_film(group, branch)
-        for element in self.moving:
-            if isinstance(element, Layer):
+        for element in self.chain.elements:
+            if not isinstance(element, Layer):
+                continue
+            if element.first_temperature:
                 first, _, _ = self._before(element, self.drops, self.flow, self.everything)
                 self.values[element.first_temperature] = self._as_input(first)
                 self.values[element.second_temperature] = self._as_input(first - self._drop(element))
+            if element.first_temperature or element.film:
                 run(element.steps, self.values)
 
     def _drop(self, element: Group | Layer) -> Array:
@@ -615,6 +675,10 @@ class Engine:
 def outward(group: Group) -> float:
     """The sign with which the surface temperature follows a drop: inside it falls, outside it rises."""
     return -1.0 if group.side == "inside" else 1.0
+
+
+def _is_outer_fins(chain: Chain, element: Group | Layer) -> bool:
+    return isinstance(element, Layer) and element.film == chain.outer.name
 
 
 def _moving(group: Group) -> tuple[str, str]:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from calcbook import properties
 from calcbook.calcfile.calculation import FluidText, Stream, Value
-from calcbook.chain.fluids import FluidSource, PropertyOperation
+from calcbook.chain.fluids import BoilingOperation, FluidSource, PropertyOperation
 from calcbook.chain.scope import Scope
 from calcbook.chain.types import StreamState
 from calcbook.formulas import parse_expression
@@ -12,6 +12,7 @@ from calcbook.library import vocabulary
 from calcbook.properties import PropertyFault
 from calcbook.quantities import QuantityFault, as_kind
 
+SATURATION = "saturation"
 FLOW_KINDS = ("mass flow", "volume flow", "speed")
 
 
@@ -19,8 +20,12 @@ def lay_out_stream(scope: Scope, stream: Stream) -> StreamState | None:
     """The state and flow of a stream as ids; None when its fluid or temperature cannot be read."""
     owner = f"stream {stream.name}"
     fluid = _fluid(scope, stream.fluid) if stream.fluid is not None else None
-    temperature = scope.value(stream.temperature, "temperature", owner, "temperature")
+    on_line = is_saturation(scope, stream.temperature)
+    temperature = "" if on_line else scope.value(stream.temperature, "temperature", owner, "temperature")
     pressure = scope.value(stream.pressure, "pressure", owner, "pressure")
+    saturation = temperature if fluid is not None and not pressure and has_saturation(fluid) else ""
+    if on_line:
+        temperature = saturation = _saturation(scope, stream, fluid, pressure)
     if fluid is None or not temperature:
         return None
     fraction = ""
@@ -35,8 +40,42 @@ def lay_out_stream(scope: Scope, stream: Stream) -> StreamState | None:
     state = StreamState(stream.name, fluid, _provider(scope, fluid, stream), stream.phase, temperature, pressure,
                         fraction, flow, flow_kind, "", place)
     mass_flow = _mass_flow(scope, stream, state) if flow else ""
+    share = scope.value(stream.non_condensable, "mole fraction", owner, "non-condensable")
     return StreamState(state.name, state.fluid, state.fluid_name, state.phase, temperature, pressure, fraction, flow,
-                       state.flow_kind, mass_flow, place)
+                       state.flow_kind, mass_flow, place, saturation, share)
+
+
+def is_saturation(scope: Scope, value: Value | None) -> bool:
+    """Whether the word `saturation` stands where a temperature is wanted, and is no symbol of the file."""
+    calculation = scope.calculation
+    return value is not None and value.symbol == SATURATION and SATURATION not in (
+        *calculation.givens, *calculation.derived, *calculation.broken)
+
+
+def has_saturation(fluid: FluidSource) -> bool:
+    """Whether a fluid has a saturation line: a pure fluid with a vapour side."""
+    return fluid.text.kind == "name" and fluid.state(None, None, "liquid").has_vapour_pressure
+
+
+def _saturation(scope: Scope, stream: Stream, fluid: FluidSource | None, pressure: str) -> str:
+    """The id of the saturation temperature of a stream's pressure; empty after a fault."""
+    assert stream.temperature is not None
+    place = stream.temperature.place
+    if fluid is None:
+        return ""
+    if not has_saturation(fluid):
+        scope.collector.add("saturation-unknown", place, f"{fluid.text.name} has no saturation line",
+                            found="temperature: saturation", expected="a pure fluid, or a temperature")
+        return ""
+    for key, there in (("pressure", pressure), ("phase", stream.phase)):
+        if not there:
+            scope.collector.add("key-missing", place, f"a saturated stream states its {key}",
+                                expected="pressure: … and phase: liquid or gas on the stream")
+    if not pressure or not stream.phase:
+        return ""
+    return scope.step(f"stream {stream.name}/T_sat", "T_sat", "saturation temperature", f"stream {stream.name}",
+                      BoilingOperation(fluid), {"p": pressure}, _provider(scope, fluid, stream),
+                      vocabulary()["saturation temperature"])
 
 
 def _provider(scope: Scope, fluid: FluidSource, stream: Stream) -> str:

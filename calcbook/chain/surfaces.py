@@ -30,6 +30,26 @@ class Shape:
     walls: tuple[Wall, ...]
     dimensions: dict[str, str]
     per_metre: bool
+    finned_side: str = ""
+
+    @property
+    def outermost(self) -> int:
+        """The index of the outermost solid surface, without its fins."""
+        return len(self.surfaces) - (2 if self.finned_side else 1)
+
+    def bare(self, side: str) -> int:
+        """The index of the solid surface on a side, without its fins."""
+        return 0 if side == "inside" else self.outermost
+
+    def wetted(self, side: str) -> int:
+        """The index of the surface that the film on a side acts on: the total finned one where it has fins."""
+        return len(self.surfaces) - 1 if side == self.finned_side else self.bare(side)
+
+    def mark(self, surface: int) -> str:
+        """The index that the symbols of a surface carry."""
+        if self.finned_side and surface == len(self.surfaces) - 1:
+            return "tf"
+        return "i" if surface == 0 and self.outermost > 0 else ("o" if surface == self.outermost else str(surface))
 
     def surface_named(self, scope: Scope, name: str, place) -> int | None:  # type: ignore[no-untyped-def]
         """The index of a surface as the file names it; None after a fault."""
@@ -37,8 +57,8 @@ class Shape:
         if name in names:
             return names[name]
         if name in ("bare", "total finned"):
-            scope.collector.add("key-not-yet-available", place, f"the surface `{name}` is not yet available",
-                                expected=", ".join(names))
+            scope.collector.add("surface-unknown", place, f"no film has fins: there is no surface `{name}`",
+                                found=name, expected=", ".join(names))
             return None
         scope.collector.add("surface-unknown", place, f"there is no surface `{shown(name)}`", found=shown(name),
                             expected=", ".join(names), nearest=nearest_names(name, names))
@@ -46,10 +66,15 @@ class Shape:
 
     def names(self) -> dict[str, int]:
         """Every name of a surface with its index."""
-        names = {"inside": 0, "outside": len(self.surfaces) - 1}
+        names = {"inside": 0, "outside": self.outermost}
         for wall in self.walls:
             names[f"outside of {wall.term.name}"] = wall.first + 1
+        if self.finned_side:
+            names |= {"bare": self.bare(self.finned_side), "total finned": len(self.surfaces) - 1}
         return names
+
+
+BUNDLE_KEYS = ("tubes", "passes", "plugged", "effective length")
 
 
 def lay_out_shape(scope: Scope, geometry: Geometry, walls: tuple[Term, ...]) -> Shape | None:
@@ -68,14 +93,15 @@ def lay_out_shape(scope: Scope, geometry: Geometry, walls: tuple[Term, ...]) -> 
 
 def _keys(shape: str) -> tuple[str, ...]:
     return {
-        "tube": ("inside diameter", "outside diameter", "length", "parallel"),
+        "tube": ("inside diameter", "outside diameter", "length", "parallel", *BUNDLE_KEYS),
         "sphere": ("inside diameter", "outside diameter"),
         "plane": ("height", "width", "area", "perimeter"),
     }.get(shape, ())
 
 
 def _kind(key: str) -> str:
-    return {"parallel": "tubes in parallel"}.get(key, key)
+    names = {"parallel": "tubes in parallel", "passes": "tube passes", "plugged": "plugged tubes"}
+    return names.get(key, "length" if key == "effective length" else key)
 
 
 # --- plane ------------------------------------------------------------------------------------------
@@ -132,16 +158,23 @@ def _round(scope: Scope, geometry: Geometry, walls: tuple[Term, ...], thicknesse
     if not all(diameters):
         return None
     length, count, per_metre = _length(scope, geometry, values)
+    heated = _heated_length(scope, values, length)
+    tubes = _open_tubes(scope, geometry, values)
+    if tubes:
+        count = _tubes_in_parallel(scope, geometry, values, tubes)
     surfaces = tuple(
-        Surface(name, _area(scope, geometry.shape, name, index, len(walls), diameter, length, count), diameter)
+        Surface(name, _area(scope, geometry.shape, name, index, len(walls), diameter, heated, tubes or count), diameter)
         for index, (name, diameter) in enumerate(zip(_surface_names(walls), diameters, strict=True))
     )
     laid = tuple(Wall(wall, index, thicknesses[index]) for index, wall in enumerate(walls))
     dimensions = {"inside diameter": diameters[0], "outside diameter": diameters[-1]}
     if geometry.shape == "tube":
         dimensions["tubes in parallel"] = count
+        dimensions["open tubes"] = tubes or count
+        if values.get("passes"):
+            dimensions["tube passes"] = values["passes"]
         if not per_metre:
-            dimensions["length"] = length
+            dimensions |= {"length": heated, "tube length": length}
     return Shape(geometry.shape, surfaces, laid, dimensions, per_metre)
 
 
@@ -161,15 +194,53 @@ def _bore(scope: Scope, geometry: Geometry, walls: tuple[Term, ...], thicknesses
 
 def _length(scope: Scope, geometry: Geometry, values: dict[str, str]) -> tuple[str, str, bool]:
     count = values.get("parallel", "")
-    if not count:
+    if not count and "tubes" not in geometry.dimensions:
         count = scope.constant("geometry/one tube", 1.0)
         if geometry.shape == "tube":
             scope.assume("geometry/parallel", "One tube carries the flow.", "no number of tubes in parallel is stated", "geometry")
-    length = values.get("length", "")
+    length = values.get("length", "") or values.get("effective length", "")
     if length or geometry.shape == "sphere":
         return length, count, False
     scope.assume("geometry/length", "Areas and heat flow are for 1 m of tube.", "no length is stated", "geometry")
     return scope.constant("geometry/1 m", 1.0, vocabulary()["length"].dimension), count, True
+
+
+def _heated_length(scope: Scope, values: dict[str, str], length: str) -> str:
+    """The length that transfers heat: the effective one where it is stated, else the whole length."""
+    effective = values.get("effective length", "")
+    if not effective:
+        return length
+    scope.assume("geometry/effective length", "Areas and heat-transfer methods take the effective length; friction takes the"
+                 " whole length.", "an effective length is stated", "geometry")
+    return effective
+
+
+def _open_tubes(scope: Scope, geometry: Geometry, values: dict[str, str]) -> str:
+    """The id of the tubes of a bundle that are not plugged; empty where no bundle is stated."""
+    tubes, plugged = values.get("tubes", ""), values.get("plugged", "")
+    for key in ("passes", "plugged"):
+        if key in geometry.dimensions and "tubes" not in geometry.dimensions and "parallel" not in geometry.dimensions:
+            scope.collector.add("key-missing", geometry.dimensions[key].place, f"`{key}` belongs to a bundle: `tubes` is missing",
+                                expected="tubes: the number of tubes of the bundle, plugged ones included")
+            return ""
+    if not tubes or not plugged:
+        return tubes
+    return scope.relation_step("geometry/open tubes", "N_open", "tubes that are not plugged", "geometry",
+                               parse_expression("N_all - N_plug"), {"N_all": tubes, "N_plug": plugged}, "bundle",
+                               "open tubes")
+
+
+def _tubes_in_parallel(scope: Scope, geometry: Geometry, values: dict[str, str], tubes: str) -> str:
+    """The tubes that share the flow: the open tubes over the passes."""
+    if not values.get("passes"):
+        if "passes" not in geometry.dimensions:
+            scope.assume("geometry/passes", "The bundle has one tube pass.", "no number of passes is stated", "geometry")
+        return tubes
+    scope.assume("geometry/passes", "Open tubes are spread evenly over the passes.",
+                 "plugged tubes are stated for the whole bundle, not pass by pass", "geometry")
+    return scope.relation_step("geometry/tubes in parallel", "N", "tubes in parallel", "geometry",
+                               parse_expression("N_open/N_pass"), {"N_open": tubes, "N_pass": values["passes"]}, "bundle",
+                               "tubes in parallel")
 
 
 def _area(scope: Scope, shape: str, name: str, index: int, last: int, diameter: str, length: str, count: str) -> str:

@@ -63,7 +63,10 @@ class ChainStep:
 
 @dataclass(frozen=True, slots=True)
 class Surface:
-    """A surface of the wall, from the inside to the outside. ``diameter`` is empty for a plane."""
+    """A surface of the wall, from the inside to the outside. ``diameter`` is empty for a plane.
+
+    Where a film acts on fins, the total finned surface stands last, also without a diameter.
+    """
 
     name: str
     area: str
@@ -149,10 +152,12 @@ class Group:
 
 @dataclass(frozen=True, slots=True)
 class Layer:
-    """A resistance in series: fouling, contact, stated, or a wall between two surfaces.
+    """A resistance in series: fouling, contact, stated, fins, or a wall between two surfaces.
 
     ``resistance`` is the id of its area resistance on ``surface``; a wall whose conductivity follows
-    its temperatures has ``steps`` that make it from T_1 and T_2.
+    its temperatures has ``steps`` that make it from T_1 and T_2. Fins have steps that make it from the
+    coefficient of the group named by ``film``, ``follows_film`` where that coefficient moves, and the
+    id of their surface ``efficiency``.
     """
 
     name: str
@@ -164,6 +169,9 @@ class Layer:
     second_temperature: str = ""
     material: str = ""
     checks: tuple[ChainCheck, ...] = ()
+    film: str = ""
+    follows_film: bool = False
+    efficiency: str = ""
 
 
 Element = Group | Layer
@@ -192,7 +200,8 @@ class OpenItem:
 class StreamState:
     """A stream with the ids of its state and flow, and the fluid that gives its properties.
 
-    Ids are empty where the file gives nothing. ``flow_kind`` is mass flow, volume flow, speed or empty.
+    Ids are empty where the file gives nothing. ``flow_kind`` is mass flow, volume flow, speed or empty;
+    ``saturation`` is the saturation temperature of a stream that stands on its saturation line.
     """
 
     name: str
@@ -206,6 +215,8 @@ class StreamState:
     flow_kind: str
     mass_flow: str
     place: Place
+    saturation: str = ""
+    non_condensable: str = ""
 
     def operation(self, name: str, keeps_phase: bool = False) -> PropertyOperation:
         """The operation that gives a property of this stream, at the bulk or (``keeps_phase``) elsewhere."""

@@ -18,7 +18,7 @@ STANDINGS = (
     "common practice",
     "from memory",
 )
-PLACES = ("bulk", "film", "surface")
+PLACES = ("bulk", "film", "surface", "saturated liquid", "saturated vapour", "liquid film")
 
 
 @dataclass(frozen=True, slots=True)
@@ -32,7 +32,7 @@ class Source:
 
 @dataclass(frozen=True, slots=True)
 class Need:
-    """What a card asks for: a quantity, and the place (bulk, film, surface) its properties are taken.
+    """What a card asks for: a quantity, and the place (one of ``PLACES``) its properties are taken.
 
     ``one_of`` lists the words or numbers that a choice may take (fixed when the chain is built);
     ``absent`` is the value taken when nothing is given, or None when it must be given.
@@ -236,6 +236,7 @@ class Situation:
     sources: tuple[Source, ...]
     where: Place
     digest_text: str = field(default="", repr=False)
+    changes_phase: str = ""
 
 
 @dataclass(frozen=True, slots=True)

@@ -199,8 +199,8 @@ class _Reader:
         quantity = vocabulary().get(name.strip())
         if quantity is None:
             self.fault(place, "quantity-unknown", f"the vocabulary has no quantity `{shown(name)}`",
-                       found=shown(name), expected="a quantity of vocabulary.yaml, then ` at bulk`, ` at film`"
-                       " or ` at surface`", nearest=nearest_names(name, vocabulary()))
+                       found=shown(name), expected="a quantity of vocabulary.yaml, then ` at ` and one of "
+                       + ", ".join(PLACES), nearest=nearest_names(name, vocabulary()))
             return None
         if where and where.strip() not in PLACES:
             self.fault(place, "place-unknown", f"properties cannot be taken at `{shown(where)}`", found=shown(where),
@@ -428,8 +428,9 @@ class _Reader:
             assumes=self.texts("assumes"),
             sources=self.sources(),
             where=self.fields.place,
-            digest_text=self._digest_text(("needs", "flow area", "characteristic length", "groups", "choose",
-                                           "choose at")),
+            digest_text=self._digest_text(("changes phase", "needs", "flow area", "characteristic length", "groups",
+                                           "choose", "choose at")),
+            changes_phase=self.fields.text("changes phase"),
         )
 
     def _groups(self) -> tuple[Group, ...]:

@@ -10,7 +10,7 @@ Must never: know a unit, read a calculation file, or let another room import Coo
 """
 
 from calcbook.properties.backed import mixture, pure
-from calcbook.properties.backend import PROPERTIES, backend_version
+from calcbook.properties.backend import PROPERTIES, SATURATION_PROPERTIES, backend_version
 from calcbook.properties.faults import PropertyFault
 from calcbook.properties.findings import Finding
 from calcbook.properties.fluid import Fluid, FluidAtPressure
@@ -20,6 +20,7 @@ from calcbook.properties.store import clear_memory
 
 __all__ = [
     "PROPERTIES",
+    "SATURATION_PROPERTIES",
     "Finding",
     "Fluid",
     "FluidAtPressure",

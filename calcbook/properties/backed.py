@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from calcbook.properties import backend, states
-from calcbook.properties.backend import PROPERTIES, SATURATION_PRESSURE, Code
+from calcbook.properties.backend import PROPERTIES, SATURATION_PRESSURE, SATURATION_PROPERTIES, Code
 from calcbook.properties.curves import AGREEMENT, PRESSURE_SLOPE, SLOPE_AGREEMENT, Curve, Family
 from calcbook.properties.faults import PropertyFault
 from calcbook.properties.findings import Finding
@@ -23,6 +23,9 @@ from calcbook.properties.store import store
 NEAREST_TO_CRITICAL = 0.9995
 # Up to so many different pressures in one call each gets its own curves; more are asked one by one.
 MOST_PRESSURES = 32
+# Passes of Newton's method from a pressure to its saturation temperature: in ln p over 1/T the line is nearly
+# straight, and the error is squared in each; five reach rounding for every fluid.
+BOILING_PASSES = 8
 
 
 @dataclass(frozen=True)
@@ -146,20 +149,61 @@ class Saturated(_BackedAtPressure):
     pressure: float | None
     phase: Phase | None
     has_vapour_pressure = True
+    properties = (*PROPERTIES, *SATURATION_PROPERTIES, SATURATION_PRESSURE)
 
     def curve(self) -> Curve:
         """This side from the triple point to just below the critical point."""
         code, quality = self.fluid.code, 1.0 if self.phase == "gas" else 0.0
         low, high = self.limits()
         names = (*PROPERTIES, SATURATION_PRESSURE)
-        family = Family(names, lambda temperature: backend.saturated(code, quality, temperature), AGREEMENT)
-        return Curve(low, high, store(f"{code.text} saturated {self.phase}"), (family,))
+        side = Family(names, lambda temperature: backend.saturated(code, quality, temperature), AGREEMENT)
+        both = Family(
+            SATURATION_PROPERTIES, lambda temperature: backend.between_phases(code, temperature), AGREEMENT
+        )
+        return Curve(low, high, store(f"{code.text} saturated {self.phase}"), (side, both))
 
     def saturation_pressure(self, temperature: ArrayLike, *, outside: Outside = "fault") -> Array:
         """Vapour pressure in Pa."""
         temperatures = _floats(temperature)
         result = _along(self.curve(), SATURATION_PRESSURE, temperatures.ravel(), sloped=False)
         return self._delivered(SATURATION_PRESSURE, temperatures, result, outside)
+
+    def boiling_temperature(self, pressure: ArrayLike, *, outside: Outside = "fault") -> Array:
+        """Saturation temperature of this side, from its own vapour-pressure curve."""
+        pressures = _floats(pressure)
+        flat = np.log(pressures.ravel())
+        curve = self.curve()
+        low, high = curve.low, curve.high
+        ends = np.log(curve.value(SATURATION_PRESSURE, np.array([low, high])))
+        known = (flat >= ends[0]) & (flat <= ends[1])
+        steep = (ends[1] - ends[0]) / (1.0 / high - 1.0 / low)
+        inverse = 1.0 / low + (flat[known] - ends[0]) / steep
+        for _ in range(BOILING_PASSES):
+            at = np.clip(1.0 / inverse, low, high)
+            vapour = curve.value(SATURATION_PRESSURE, at)
+            slope = -at * at * curve.slope(SATURATION_PRESSURE, at) / vapour
+            inverse = 1.0 / at - (np.log(vapour) - flat[known]) / slope
+        result = np.full(flat.shape, np.nan)
+        result[known] = np.clip(1.0 / inverse, low, high)
+        if outside == "fault" and not known.all():
+            first = float(pressures.ravel()[int(np.argmin(known))])
+            raise PropertyFault(
+                "outside-saturation",
+                f"{self.fluid.name} at {first:.6g} Pa has no saturation temperature",
+                f"a pressure from {float(np.exp(ends[0])):.6g} Pa (triple point) to {float(np.exp(ends[1])):.6g} Pa"
+                " (just below the critical point)",
+            )
+        return result.reshape(pressures.shape)
+
+    def critical_pressure(self) -> float | None:
+        """Critical pressure in Pa."""
+        critical: float | None = self._facts().get("p_critical")
+        return critical
+
+    def molar_mass(self) -> float | None:
+        """Molar mass in kg/mol."""
+        mass: float | None = self._facts().get("molar_mass")
+        return mass
 
     def freezing_temperature(self) -> float | None:
         """Triple point temperature."""

@@ -16,6 +16,8 @@ from calcbook.properties.curves import PRESSURE_SLOPE
 
 PROPERTIES = ("density", "viscosity", "conductivity", "heat capacity", "expansion coefficient")
 SATURATION_PRESSURE = "saturation pressure"
+# Along the saturation line only; they vanish at the critical point.
+SATURATION_PROPERTIES = ("latent heat", "surface tension")
 PRESSURE_STEP = 1e-3  # relative, for slopes in pressure: rounding 1e-13/1e-3 of a liquid's small change
 
 
@@ -74,6 +76,7 @@ def facts(code: Code) -> dict[str, Any]:
             "T_triple": state.Ttriple(),
             "p_triple": _finite(lambda: state.trivial_keyed_output(coolprop.iP_triple)),
             "p_max": state.pmax(),
+            "molar_mass": state.molar_mass(),
         }
         row = _some_state(state, found["T_critical"], found["T_max"])
     for name in ("viscosity", "conductivity"):
@@ -150,6 +153,22 @@ def saturated(code: Code, quality: float, temperature: float) -> dict[str, float
     except ValueError:
         return dict.fromkeys((*PROPERTIES, SATURATION_PRESSURE), math.nan)
     return _row(state) | {SATURATION_PRESSURE: float(state.p())}
+
+
+def between_phases(code: Code, temperature: float) -> dict[str, float]:
+    """Latent heat (enthalpy of the vapour less that of the liquid, J/kg) and surface tension (N/m)."""
+    import CoolProp.CoolProp as coolprop
+
+    state = state_of(code)
+    state.unspecify_phase()
+    try:
+        state.update(coolprop.QT_INPUTS, 0.0, temperature)
+        liquid = float(state.hmass())
+        tension = _answer(state.surface_tension)
+        state.update(coolprop.QT_INPUTS, 1.0, temperature)
+        return {"latent heat": float(state.hmass()) - liquid, "surface tension": tension}
+    except ValueError:
+        return dict.fromkeys(SATURATION_PROPERTIES, math.nan)
 
 
 def incompressible(code: Code, temperature: float) -> dict[str, float]:

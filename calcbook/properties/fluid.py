@@ -63,9 +63,10 @@ class FluidAtPressure(ABC):
     pressure: float | None
     phase: Phase | None
     has_vapour_pressure: bool = False
+    properties: tuple[str, ...] = PROPERTIES
 
     def value(self, property_name: str, temperature: ArrayLike, *, outside: Outside = "fault") -> Array:
-        """A property (one of ``PROPERTIES``) at temperatures in K.
+        """A property (one of ``properties``) at temperatures in K.
 
         The bits of a sample do not depend on the other samples. A temperature at which there is no value
         is a ``PropertyFault``, or NaN for that sample where ``outside`` is "nan".
@@ -98,6 +99,18 @@ class FluidAtPressure(ABC):
         """Vapour pressure of the liquid in Pa; a ``PropertyFault`` where the fluid has none."""
         raise PropertyFault("no-vapour-pressure", f"{self.fluid.name} has no vapour pressure here")
 
+    def boiling_temperature(self, pressure: ArrayLike, *, outside: Outside = "fault") -> Array:
+        """Saturation temperature in K at pressures in Pa; a ``PropertyFault`` where the fluid has none."""
+        raise PropertyFault("no-vapour-pressure", f"{self.fluid.name} has no vapour pressure here")
+
+    def critical_pressure(self) -> float | None:
+        """Critical pressure in Pa, None where the fluid has no vapour side."""
+        return None
+
+    def molar_mass(self) -> float | None:
+        """Molar mass in kg/mol, None where it is not known."""
+        return None
+
     def freezing_temperature(self) -> float | None:
         """Temperature in K below which the liquid freezes, None where it is not known."""
         return None
@@ -123,7 +136,7 @@ class FluidAtPressure(ABC):
         """Why there is no value at a temperature."""
 
     def _answer(self, name: str, temperature: ArrayLike, outside: Outside, sloped: bool) -> Array:
-        _known(name)
+        _known(name, self.properties)
         temperatures = _floats(temperature)
         result = self._flat(name, temperatures.ravel(), sloped)
         return self._delivered(name, temperatures, result, outside)
@@ -135,9 +148,9 @@ class FluidAtPressure(ABC):
         return result.reshape(temperatures.shape)
 
 
-def _known(name: str) -> None:
-    if name not in PROPERTIES:
-        raise PropertyFault("property-unknown", f"no property is called {name!r}", ", ".join(PROPERTIES))
+def _known(name: str, properties: tuple[str, ...] = PROPERTIES) -> None:
+    if name not in properties:
+        raise PropertyFault("property-unknown", f"no property is called {name!r}", ", ".join(properties))
 
 
 def _floats(values: ArrayLike) -> Array:

@@ -17,7 +17,7 @@ import tempfile
 from pathlib import Path
 from typing import Any
 
-FORMAT = "calcbook-properties-1"
+FORMAT = "calcbook-properties-2"
 DIRECT_LIMIT = 20_000  # direct answers kept per property and file: bounds the file to about 1 MB
 
 

@@ -38,8 +38,8 @@ class Life:
     issued: str = ""
     notice: tuple[str, ...] = ()
     changes: tuple[Block, ...] = ()
+    answers: tuple[tuple[int, str], ...] = ()
 
     def line(self, role: str) -> SignOffLine | None:
         """The sign-off line of a role, if there is one."""
         return next((line for line in self.signoffs if line.role == role), None)
-    answers: tuple[tuple[int, str], ...] = ()

@@ -10,7 +10,7 @@ from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from typing import Any
 
-from calcbook.chain.fluids import LiquidOperation, PropertyOperation
+from calcbook.chain.fluids import BoilingOperation, FixedOperation, LiquidOperation, PropertyOperation
 from calcbook.chain.outcome import CaseOutcome, StepRow
 from calcbook.chain.solve import Solution
 from calcbook.chain.types import CLEAN, CONDITIONS, SERVICE, Chain, ChainStep, Group, Layer, StreamState
@@ -141,7 +141,7 @@ class StepTexts:
         if isinstance(operation, SumOperation):
             line = operation.line
             return f"sum of {write(line.of)} for {line.over} = 0 to {line.terms - 1}"
-        if isinstance(operation, PropertyOperation):
+        if isinstance(operation, PropertyOperation | BoilingOperation | FixedOperation):
             return "property"
         if isinstance(operation, LiquidOperation):
             return "phase of the fluid"
@@ -191,6 +191,11 @@ class StepTexts:
             return f"{operation.line.terms} terms with {_listed(operation.symbols, arguments)}"
         if isinstance(operation, PropertyOperation | LiquidOperation):
             return self._state(step, operation, solution, condition)
+        if isinstance(operation, BoilingOperation):
+            pressure = solution.number(step.inputs["p"]) / PASCALS_OF_BAR
+            return f"{operation.source.text.name}, {number(pressure, 5)} bar, {SATURATED}"
+        if isinstance(operation, FixedOperation):
+            return operation.source.text.name
         raise TypeError(f"{type(operation).__name__} has no printed form")
 
     def _state(
@@ -231,7 +236,7 @@ class StepTexts:
         """What a row rests on, which figures stand for its symbols, and its Celsius temperature."""
         operation = step.operation
         parts = [step.basis]
-        if isinstance(operation, PropertyOperation | LiquidOperation):
+        if isinstance(operation, PropertyOperation | LiquidOperation | BoilingOperation | FixedOperation):
             asked = operation.operation if isinstance(operation, LiquidOperation) else operation
             parts = [
                 next(

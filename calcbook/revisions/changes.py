@@ -201,6 +201,11 @@ class _Differences:
         )
         for name, read in sections:
             read(name)
+        known = {name for name, _ in sections}
+        trees = (entries_of(self.old.tree, ""), entries_of(self.new.tree, ""))
+        for name in merged(*trees):
+            if name not in known:
+                self._other(name)
         self._book()
         self._cards()
         return tuple(self.changes)
@@ -273,9 +278,8 @@ class _Differences:
             return
         if one.text == two.text and one.source == two.source:
             return
-        edits = (Edit(path, new, key),)
         if same_number(one, two):
-            kind, moves, edits = _apart_kind(one, two), False, ()
+            kind, moves = _apart_kind(one, two), False
         alike = (
             one.quantity is not None
             and two.quantity is not None
@@ -291,7 +295,7 @@ class _Differences:
                 two.text,
                 one.source,
                 two.source,
-                edits if moves else (),
+                (Edit(path, new, key),) if moves else (),
                 moves,
                 one.quantity if alike else None,
                 two.quantity if alike else None,
@@ -438,6 +442,15 @@ class _Differences:
     def _report(self, section: str) -> None:
         for name, key, old, new in self._pairs(*self._roots(section), section):
             self._whole((section, name), "report", f"report, {name}", old, new, key, moves=name == "U on")
+
+    def _other(self, section: str) -> None:
+        """A section without rules of its own: each entry is a change, of the kind that the section is called."""
+        old, new = self._roots(section)
+        if isinstance(old, Mapping) and isinstance(new, Mapping):
+            for name, key, was, now in self._pairs(old, new, section):
+                self._figure((section, name), section, f"{section}, {name}", was, now, key)
+        elif _meaning(old) != _meaning(new):
+            self._whole((section,), section, section, old, new, None, moves=True)
 
     # -- terms --------------------------------------------------------------------------------------
 

@@ -159,7 +159,8 @@ class Comparison:
             or self.checks
             or self.opened
             or self.closed
-            or any(effect.difference for effect in (*self.terms, *self.results))
+            or any(effect.difference for effect in self.terms)
+            or any(effect.difference for effect in self.results)
             or any(part.software for part in self.software)
         )
 

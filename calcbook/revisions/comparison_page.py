@@ -22,7 +22,7 @@ from calcbook.revisions.sides import Side
 
 DIGITS = 6
 RESISTANCE_UNIT = "m²·K/W"
-FIGURE_WIDTH = 14
+FIGURE_WIDTH, UNIT_WIDTH = 14, 14
 # A part below this share of the result moved it by nothing that a reader could see.
 NOTHING = 1e-12
 FROM_ZERO = "from zero"
@@ -175,7 +175,7 @@ def _moved(attribution: Attribution, comparison: Comparison) -> list[Block]:
 
 
 def _line(figure: str, unit: str, words: str) -> str:
-    return f"{figure:>{FIGURE_WIDTH}} {unit:<11} {' '.join(words.split())}"
+    return f"{figure:>{FIGURE_WIDTH}} {unit:<{UNIT_WIDTH}} {' '.join(words.split())}"
 
 
 def _words(part: Part, changes: dict[str, Change]) -> str:
@@ -352,11 +352,9 @@ def _chain(comparison: Comparison) -> list[Block]:
     )
     blocks += [Paragraph("Resistances on the basis area."), Table(columns, rows)]
     report = comparison.new.calculation.report
+    effects = (*comparison.results, *comparison.margins, *comparison.cases)
     columns = ("Result", "Case", "Was", "Now", "Difference", "Relative")
-    rows = tuple(
-        _effect(item, report) for item in (*comparison.results, *comparison.margins, *comparison.cases)
-    )
-    return [*blocks, Table(columns, rows)]
+    return [*blocks, Table(columns, tuple(_effect(item, report) for item in effects))]
 
 
 def _effect(effect: ResultEffect, report: Report) -> tuple[str, ...]:

@@ -6,9 +6,11 @@ what cannot be read. Works in a shallow clone as far as its history reaches.
 
 from __future__ import annotations
 
+import io
 import os
 import re
 import subprocess
+from collections.abc import Iterable
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -28,8 +30,33 @@ class Commit:
 
     def blob(self, path: str) -> bytes | None:
         """The bytes of a file, by its path from the folder; None when the commit has no such file."""
-        finished = _git(self.folder, "cat-file", "blob", f"{self.digits}:{_from_here(path)}")
-        return finished.stdout if finished.returncode == 0 else None
+        return self.blobs((path,)).get(path)
+
+    def blobs(self, paths: Iterable[str]) -> dict[str, bytes]:
+        """The bytes of many files in one go; those that the commit does not have are left out."""
+        wanted = [path for path in paths if "\n" not in path]
+        names = "".join(f"{self.digits}:{_from_here(path)}\n" for path in wanted)
+        stream = io.BytesIO(
+            _git(self.folder, "cat-file", "--batch", given=names.encode("utf-8", "surrogateescape")).stdout
+        )
+        found = {}
+        for path in wanted:
+            head = stream.readline().split()
+            if len(head) != 3 or head[1] not in (b"blob", b"tree", b"commit", b"tag"):
+                continue
+            data = stream.read(int(head[2]))
+            stream.read(1)
+            if head[1] == b"blob":
+                found[path] = data
+        return found
+
+    def prefix(self) -> str:
+        """The folder's own path from the top of its repository, empty at the top."""
+        return (
+            _git(self.folder, "rev-parse", "--show-prefix")
+            .stdout.decode("utf-8", "surrogateescape")
+            .strip("\n/")
+        )
 
     def names(self, path: str) -> tuple[str, ...]:
         """The names in a folder of the commit, by its path from the folder; none when there is no such folder."""
@@ -92,19 +119,13 @@ def _names(output: bytes) -> list[str]:
     return [name for name in output.decode("utf-8", "surrogateescape").split("\0") if name]
 
 
-def _git(folder: Path, *arguments: str) -> subprocess.CompletedProcess[bytes]:
+def _git(folder: Path, *arguments: str, given: bytes = b"") -> subprocess.CompletedProcess[bytes]:
+    command = ["git", "-C", str(folder), *arguments]
     try:
-        return subprocess.run(
-            ["git", "-C", str(folder), *arguments], capture_output=True, check=False, stdin=subprocess.DEVNULL
-        )
+        return subprocess.run(command, capture_output=True, check=False, input=given)
     except OSError:
+        place = Place("git")
+        expected = "git on the path of programs"
         raise Faults(
-            [
-                Fault(
-                    "git-not-available",
-                    Place("git"),
-                    "git cannot be started here",
-                    expected="git on the path of programs",
-                )
-            ]
+            [Fault("git-not-available", place, "git cannot be started here", expected=expected)]
         ) from None

@@ -155,7 +155,7 @@ def issued_state(copy: Issued, lifecycle: Lifecycle) -> str:
     """The state of an issued copy; nothing is written into it when it is superseded."""
     if lifecycle.void is not None:
         return VOID
-    return ISSUED_STATE if copy is lifecycle.latest_issued else SUPERSEDED
+    return ISSUED_STATE if copy == lifecycle.latest_issued else SUPERSEDED
 
 
 # --- sign-offs judged -------------------------------------------------------------------------------

@@ -48,13 +48,14 @@ def revise(path: Path, name: str, output: Path, date: datetime.date, numbers: bo
     issued = {copy.revision.casefold() for copy in lifecycle.issued}
     final = any(copy.kind == FINAL for copy in lifecycle.issued)
     scheme = read_settings(path.parent).revisions
-    now = next_revision(node.text, scheme, numbers or final, node.place)
+    was = " ".join(node.text.split())
+    now = next_revision(was, scheme, numbers or final, node.place)
     latest = lifecycle.latest_issued
     if latest is not None and revision_order(now) <= revision_order(latest.revision):
         now = next_revision(latest.revision, scheme, numbers or final, node.place)
     _refuse_earlier(head, date)
     write_whole(path, text.revised(node, head, now, date.isoformat()))
-    return Revised(node.text, now, node.text.casefold() in issued)
+    return Revised(was, now, was.casefold() in issued)
 
 
 def next_revision(revision: str, scheme: str, numbers: bool = False, place: Place | None = None) -> str:
@@ -103,6 +104,13 @@ def _refuse_earlier(head: Mapping, date: datetime.date) -> None:
 def _by_hand(place: Place, message: str) -> Faults:
     return Faults([Fault("revise-by-hand", place, message, "", "the new revision and its line in `revisions:` written by"
                          " hand")])
+
+
+def _without_comment(line: str) -> str:
+    """A line up to its comment; a hash in quotes starts none."""
+    plain = re.sub(r"\"[^\"]*\"|(?<![\w'])'[^']*'", lambda quoted: "_" * len(quoted.group()), line)
+    comment = re.search(r"(^|\s)#", plain)
+    return line[: comment.start()] if comment else line
 
 
 class _Text:
@@ -176,7 +184,7 @@ class _Text:
 
     def _add_in_brackets(self, first: int, last: int, entry: str, has_items: bool) -> None:
         for number in range(last - 1, first - 2, -1):
-            place = self.lines[number].rfind("]")
+            place = _without_comment(self.lines[number]).rfind("]")
             if place >= 0:
                 line = self.lines[number]
                 before = line[:place].rstrip()

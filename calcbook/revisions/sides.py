@@ -7,11 +7,13 @@ import re
 import shutil
 import tempfile
 import weakref
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field, replace
 from pathlib import Path
 
 from calcbook.calcfile import BOOK_FILE, Calculation, read_settings
+from calcbook.calcfile.calculation import Given
+from calcbook.calcfile.reading import NUMBER
 from calcbook.calcfile.tablefile import read_table_file
 from calcbook.chain.outcome import Solved
 from calcbook.documents import Document, Node, Scalar, Sequence, read_file
@@ -20,7 +22,15 @@ from calcbook.faults import Collector, Fault, Faults, Place, nearest_names, show
 from calcbook.interface import HOUSE_CARDS, solve_file
 from calcbook.record import Digest, digest_of
 from calcbook.revisions.git import Commit, commit_of
-from calcbook.revisions.seals import CALCULATION, RESULTS, issued_copies, issued_folder, read_seal
+from calcbook.revisions.seals import (
+    CALCULATION,
+    ISSUED,
+    RESULTS,
+    SEAL_NAME,
+    issued_copies,
+    issued_folder,
+    read_seal,
+)
 
 OUTPUT = "output"
 _ISSUED_COPY = re.compile(r"([A-Za-z0-9][A-Za-z0-9_.-]{0,39})@([A-Za-z0-9][A-Za-z0-9.-]{0,9})")
@@ -150,13 +160,16 @@ def load_from_commit(folder: Path, revision: str, path: str) -> Side:
             ]
         )
     keeper = _Kept()
-    _take_out(commit, inside, keeper.path, whole.name)
-    side = _solved_side(keeper.path / whole.name, called, "not issued", keeper)
-    output = read_settings(keeper.path).output or OUTPUT
+    # As deep as in the repository, so that an output folder beside the book is found beside it here too.
+    target = keeper.path / commit.prefix() / inside
+    target.mkdir(parents=True, exist_ok=True)
+    _take_out(commit, inside, target, whole.name)
+    side = _solved_side(target / whole.name, called, "not issued", keeper)
+    output = read_settings(target).output or OUTPUT
     recorded = commit.blob(f"{inside}/{output}/{side.calculation.number}/{RESULTS}")
-    return _with_results(
-        side, _json(recorded.decode("utf-8", "replace"), called) if recorded is not None else None
-    )
+    if recorded is None:
+        return side
+    return _with_results(side, _json(recorded.decode("utf-8", "replace"), called))
 
 
 class _Kept:
@@ -170,14 +183,41 @@ class _Kept:
 def _take_out(commit: Commit, inside: str, target: Path, name: str) -> None:
     """Write the calculation file and what its reading needs beside it into a folder."""
     tables = [item for item in commit.names(inside) if item.lower().endswith(".csv")]
-    cards = [
-        f"{HOUSE_CARDS}/{item}" for item in commit.names(f"{inside}/{HOUSE_CARDS}") if item.endswith(".yaml")
-    ]
-    for item in (name, BOOK_FILE, *tables, *cards):
-        data = commit.blob(f"{inside}/{item}")
-        if data is not None:
-            (target / item).parent.mkdir(exist_ok=True)
-            (target / item).write_bytes(data)
+    cards = [item for item in commit.names(f"{inside}/{HOUSE_CARDS}") if item.endswith(".yaml")]
+    _write_out(
+        commit, inside, target, (name, BOOK_FILE, *tables, *(f"{HOUSE_CARDS}/{item}" for item in cards))
+    )
+    links = _linked(target / name)
+    if not links:
+        return
+    _write_out(commit, inside, target, (item for item in commit.names(inside) if item.endswith(".yaml")))
+    output = read_settings(target).output or OUTPUT
+    for number in links:
+        copies = f"{output}/{number}/{ISSUED}"
+        names = [f"{copies}/{copy}" for copy in commit.names(f"{inside}/{copies}")]
+        _write_out(
+            commit, inside, target, (f"{copy}/{item}" for copy in names for item in (SEAL_NAME, RESULTS))
+        )
+
+
+def _write_out(commit: Commit, inside: str, target: Path, names: Iterable[str]) -> None:
+    wanted = {f"{inside}/{name}": target / name for name in names}
+    for name, data in commit.blobs(wanted).items():
+        wanted[name].parent.mkdir(parents=True, exist_ok=True)
+        wanted[name].write_bytes(data)
+
+
+def _linked(path: Path) -> tuple[str, ...]:
+    """The numbers of the calculations that a file takes givens from."""
+    root = read_file(path, collector=Collector()).root
+    givens = root.get("givens") if isinstance(root, MappingNode) else None
+    numbers = []
+    for _, given in givens.entries if isinstance(givens, MappingNode) else ():
+        link = given.get("from") if isinstance(given, MappingNode) else None
+        number = link.get("calculation") if isinstance(link, MappingNode) else None
+        if isinstance(number, Scalar) and NUMBER.fullmatch(number.text):
+            numbers.append(number.text)
+    return tuple(dict.fromkeys(numbers))
 
 
 # --- reading ----------------------------------------------------------------------------------------
@@ -253,13 +293,19 @@ def _written_out(root: Node, folder: Path, calculation: Calculation) -> Node:
     for key, value in givens.entries:
         given = calculation.givens.get(key.text)
         if given is not None and isinstance(value, MappingNode) and value.get("value") is None:
-            text = (Scalar("value", value.place), Scalar(given.value.text, given.value.place))
-            value = MappingNode((text, *value.entries), value.place)
+            value = MappingNode((*_stated(given), *value.entries), value.place)
         entries.append((key, value))
     whole = MappingNode(tuple(entries), givens.place)
     return MappingNode(
         tuple((key, whole if node is givens else node) for key, node in root.entries), root.place
     )
+
+
+def _stated(given: Given) -> tuple[tuple[Scalar, Node], ...]:
+    """The value and source of a given that is taken from another calculation, as the file could state them."""
+    place = given.value.place
+    texts = (("value", given.value.text), ("source", given.source))
+    return tuple((Scalar(key, place), Scalar(text, place, "quoted")) for key, text in texts)
 
 
 def _with_tables(root: Node, folder: Path) -> Node:
@@ -282,7 +328,10 @@ def _table(path: Path, name: Scalar) -> Node:
     columns = read_table_file(path, name.place, Collector()) or {}
     return MappingNode(
         tuple(
-            (Scalar(column, name.place), Sequence(tuple(Scalar(item.text, name.place) for item in items), name.place))
+            (
+                Scalar(column, name.place),
+                Sequence(tuple(Scalar(item.text, name.place) for item in items), name.place),
+            )
             for column, items in columns.items()
         ),
         name.place,

@@ -12,6 +12,7 @@ from calcbook.faults import Fault, Faults, Place, nearest_names, shown
 from calcbook.files import write_whole
 from calcbook.interface import solve_file
 from calcbook.record import digest_of, record_text, results_text, software_of
+from calcbook.record.markdown import visible
 from calcbook.revisions import forms
 from calcbook.revisions.lifecycle import VALID, VOID, Judged, Lifecycle, life_of, lifecycle_of
 from calcbook.revisions.seals import RECORD, RESULTS
@@ -258,7 +259,7 @@ def declare_void(work: Work, person: str, date: datetime.date, because: str) -> 
     if len(forms.own_words(because)) < forms.FEWEST_WORDS:
         raise _fault("answer-bare", work.place, "the reason is no sentence", shown(because),
                      "why it is void and what replaces it")
-    write_signoffs(path, replace(kept, void=Voiding(signer, date.isoformat(), because)))
+    write_signoffs(path, replace(kept, void=Voiding(signer, date.isoformat(), visible(because))))
     write_record(work)
     return Step(VOID, path)
 

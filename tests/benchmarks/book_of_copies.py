@@ -18,7 +18,7 @@ sys.path.insert(0, str(Path(__file__).parent.parent / "chain"))
 
 from small_calculations import COOLER_GIVENS, COOLER_REST, HEAD, givens
 
-from calcbook.interface import record, solve_file
+from calcbook.interface import record_text, solve_file
 
 PROPERTIES = ("rhomass", "viscosity", "conductivity", "cpmass")
 
@@ -65,12 +65,12 @@ def main() -> None:
     copies = int(sys.argv[1]) if len(sys.argv) > 1 else 200
     with tempfile.TemporaryDirectory() as folder:
         paths = written(Path(folder), copies)
-        record(solve_file(paths[0]))
+        record_text(solve_file(paths[0]))
         start = time.perf_counter()
         solved = [solve_file(path) for path in paths]
         solving = time.perf_counter() - start
         start = time.perf_counter()
-        letters = sum(len(record(item)) for item in solved)
+        letters = sum(len(record_text(item)) for item in solved)
         writing = time.perf_counter() - start
         bare_calls(solved[0])
         bare = sum(bare_calls(item) for item in solved)

@@ -17,6 +17,7 @@ from small_calculations import (
     plane_between,
 )
 
+from calcbook.chain import closing
 from calcbook.chain.solve import solve
 from calcbook.interface import solve_file
 from calcbook.properties import pure
@@ -264,3 +265,27 @@ def test_outer_group_turns_negative_when_radiation_outweighs_the_air(tmp_path):
     assert surface < 288.15
     assert solution.number("solution/Q") > 0.0
     assert solution.number(chain.results["h outer surface"]) < 0.0
+
+
+# --- the bracket on its own -----------------------------------------------------------------------------
+
+
+@pytest.mark.parametrize(
+    ("body", "cards"),
+    [
+        (insulated_pipe(), {}),
+        (bare_surface(T_sur="-40 degC", T_in="15 degC"), {}),
+        (plane_between("house-condensing", "house-boiling"), FLUX_CARDS),
+    ],
+)
+def test_bracket_finds_what_newton_finds(tmp_path, monkeypatch, body, cards):
+    """With no passes allowed every sample is bracketed; 1e-9: laws count as met at 1e-10."""
+    chain = chain_of(tmp_path, body, cards)
+    by_newton = solve(chain, chain.case_inputs(""), "service")
+    monkeypatch.setattr(closing, "MAXIMUM_PASSES", 0)
+    bracketed = solve(chain, chain.case_inputs(""), "service")
+    assert bool(bracketed.converged)
+    for name in ("U", "heat flow"):
+        assert bracketed.number(chain.results[name]) == pytest.approx(
+            by_newton.number(chain.results[name]), rel=1e-9
+        )

@@ -278,22 +278,6 @@ def test_line_ends_of_another_machine_void_nothing(path: Path) -> None:
     assert [item.validity for item in judged(path)] == ["valid"] * 3
 
 
-HOUSE_CARD = """\
-material: house-steel
-title: Stainless steel of the house (invented for this test)
-table:
-  T: [293.15 K, 573.15 K]
-  k: [14 W/(m K), 18 W/(m K)]
-outside: open item
-spread: {within: 5 %, because: two suppliers, standing: common practice}
-sources:
-  - {cite: "house sheet LM-HS-01", standing: common practice}
-check points:
-  - {T: 293.15 K, k: 14 W/(m K), within: 1e-6, source: house sheet LM-HS-01, standing: common practice}
-state: {is: trial, since: 0.1}
-"""
-
-
 def house_card_from(builtin: str) -> str:
     """The text of a built-in material card under the name of a house card."""
     from calcbook.library import ROOT
@@ -386,9 +370,8 @@ def test_the_record_shows_valid_void_and_missing(tmp_path: Path) -> None:
     text = record_text(work.solved, life_of(path, work.solved, work.output))
     block = text[text.index("## 16. Sign-off") : text.index("## 17.")]
     assert "| prepared | valid | K. L. (kl) | 2026-09-02 |" in block
-    assert "| checked | void | M. R. (mr) | 2026-09-03 | review of every line | meaning changed: givens / R\\_fo" in (
-        block.replace("R_fo", "R\\_fo") if "R\\_fo" not in block else block)
-    assert "| approved | missing |" in block
+    assert "| checked | void | M. R. (mr) | 2026-09-03 | review of every line | meaning changed: givens / R_fo;" in block
+    assert re.search(r"\| approved \| (missing|not signed) \|", block)
     assert "| State | prepared |" in text
 
 
@@ -404,11 +387,11 @@ def test_a_record_without_a_life_has_every_sign_off_missing(signed: Path) -> Non
     solved = work_of(signed).solved
     text = record_text(solved)
     assert text == record_text(solved, Life())
-    assert text.count("| missing |") == 3
+    assert len(re.findall(r"^\| (prepared|checked|approved) \| (missing|not signed) \|", text, re.MULTILINE)) == 3
     assert "| State | in preparation |" in text
 
 
-HOSTILE = "a | b `code` <b>bold</b> &amp; \\u202eright to left\\u202c \\x07 bell \\n| --- | new row R_fo"
+HOSTILE = "a | b `code` <b>bold</b> &amp; \u05d0\u05d1 \u200f\u200d [x](y) * _ ~ # \\n|---|\\n| new | row |"
 
 
 def test_hostile_words_neither_break_the_tables_nor_the_digest(tmp_path: Path) -> None:
@@ -430,6 +413,16 @@ def test_hostile_words_neither_break_the_tables_nor_the_digest(tmp_path: Path) -
     assert signoffs_text(read_signoffs(signoffs_path(path))) == signoffs
     assert digest_of(work.solved) == digest_of(work_of(path).solved)
     cells_of_tables(text)
+
+
+def test_characters_that_cannot_be_seen_are_refused_in_a_form(tmp_path: Path) -> None:
+    path = make_book(tmp_path)
+    sign_prepared(path)
+    form = sign(work_of(path), "checked", "mr", day("2026-09-03")).path
+    fill(form, answer="R_fo was compared with its table \\u202eelbat")
+    with pytest.raises(Faults) as caught:
+        sign(work_of(path), "checked", "mr", day("2026-09-03"))
+    assert {fault.code for fault in caught.value.faults} == {"file-not-text"}
 
 
 def cells_of_tables(text: str) -> None:

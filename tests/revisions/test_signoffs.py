@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import datetime
+import re
 from collections.abc import Callable
 from dataclasses import replace
 from pathlib import Path
@@ -147,13 +148,9 @@ def test_a_preparer_whom_the_book_does_not_list_is_a_fault_at_his_name(tmp_path:
     path = make_book(tmp_path, CALCULATION.replace("prepared by: K. L.", "prepared by: K. M."))
     with pytest.raises(Faults) as caught:
         sign(work_of(path), "checked", "mr", day("2026-09-03"))
-    assert str(caught.value) == (
-        "wc-101.yaml:7:16: preparer-unknown: the book lists no person `K. M.`\n"
-        "     7 |   prepared by: K. M.\n"
-        "       |                ^^^^^\n"
-        "    expected: a name or other spelling of book.yaml\n"
-        "    nearest: M. R., K. L."
-    ) or caught.value.faults[0].code == "preparer-unknown" and caught.value.faults[0].place.line == 7
+    (fault,) = caught.value.faults
+    assert (fault.code, fault.place.line, fault.place.column, fault.found) == ("preparer-unknown", 7, 16, "K. M.")
+    assert "K. L." in fault.nearest
 
 
 def test_an_unknown_person_and_an_unknown_role_get_their_nearest(path: Path) -> None:
@@ -431,12 +428,13 @@ def test_a_hand_value_is_a_quantity(path: Path, value: str, code: str) -> None:
 
 # --- the file ---------------------------------------------------------------------------------------
 
-TEXTS = st.text(max_size=30)
+# What a reader of YAML refuses, escaped or not, reaches no file of sign-offs.
+REFUSED = re.compile("[\x00-\x08\x0b\x0c\x0e-\x1f\x7f-\x9f\u2028\u2029\u202a-\u202e\u2066-\u2069\ufeff\ufffe\uffff]")
+TEXTS = st.text(st.characters(exclude_categories=("Cs",)), max_size=30).map(lambda text: REFUSED.sub("", text))
 
 
 @given(TEXTS)
 def test_any_text_is_read_back_from_its_quotes(text: str) -> None:
-    text = text.encode("utf-8", "replace").decode("utf-8")
     root = read_text(f"key: {quoted(text)}\n", "text").root
     assert isinstance(root, Mapping)
     value = root.get("key")
@@ -447,7 +445,6 @@ def test_any_text_is_read_back_from_its_quotes(text: str) -> None:
 @given(TEXTS, TEXTS, TEXTS)
 def test_a_file_of_sign_offs_is_read_back_as_it_was_written(tmp_path_factory: pytest.TempPathFactory,
                                                             solved_work: Work, one: str, two: str, three: str) -> None:
-    one, two, three = (text.encode("utf-8", "replace").decode("utf-8") for text in (one, two, three))
     content = content_of(solved_work.solved)
     values = HandValues("checked", one, "2026-09-03", "A", two, (HandValue("U_service", three),), "x")
     entry = bound(SignOff("checked", one, two, "2026-09-03", "A", content, three, one, (Answer("2", one, two),),
@@ -489,6 +486,13 @@ def test_a_void_calculation_says_so_and_can_neither_be_signed_nor_declared_void_
     assert codes(lambda: declare_void(work_of(path), "ta", day("2026-09-06"), "Again and again.")) == ["calculation-void"]
     record = (work.output / "WC-101" / "record.md").read_text(encoding="utf-8")
     assert "> Void since 2026-09-06: The cooler is replaced, see WC-201." in record
+
+
+def test_a_reason_for_void_hides_no_character(path: Path) -> None:
+    declare_void(work_of(path), "ta", day("2026-09-06"), "Replaced by\x07 the \u202ecooler WC-201.")
+    void = read_signoffs(signoffs_path(path)).void
+    assert void is not None
+    assert void.because == "Replaced byU+0007 the U+202Ecooler WC-201."
 
 
 def test_a_reason_for_void_is_a_sentence(path: Path) -> None:
