@@ -56,7 +56,7 @@ def lay_out_fins(scope: Scope, terms: tuple[Term, ...], shape: Shape) -> tuple[S
     assert film.fins is not None
     side = "inside" if term is terms[0] else "outside"
     if not _fits(scope, found, shape, side):
-        return shape, None
+        return replace(shape, fins_failed=True), None
     fins = film.fins
     values = dict(fins.values)
     texts = {key: text for key, text in fins.texts.items() if key == "material"}
@@ -64,7 +64,7 @@ def lay_out_fins(scope: Scope, terms: tuple[Term, ...], shape: Shape) -> tuple[S
     own = Term(f"fins of {film.name}", "fins", fins.place, texts, fins.text_places, values, tip)
     if any(own.name in (other.name, *(branch.name for branch in other.branches)) for other in terms):
         scope.collector.add("term-twice", film.place, f"`{own.name}` is the name of the fins", expected="another name for the term")
-        return shape, None
+        return replace(shape, fins_failed=True), None
     return _Areas(scope, shape, side, film, own).laid_out()
 
 
@@ -115,7 +115,7 @@ class _Areas:
         figures = {kind: self.scope.value(fins.values.get(key), kind, self.own.name, key) for key, kind in kinds.items()}
         figures = {kind: name for kind, name in figures.items() if name}
         if not {"fin height", "fin thickness"} <= set(figures):
-            return self.shape, None
+            return replace(self.shape, fins_failed=True), None
         bare = self.shape.surfaces[self.shape.bare(self.side)]
         unfinned, area = self._annular(figures, bare) if fins.shape == "annular" else self._straight(figures, bare)
         total = self._step("A_tf", "area, total finned", "A_f + A_u", {"A_f": area, "A_u": unfinned}, "total finned area")

@@ -23,7 +23,10 @@ class Wall:
 
 @dataclass(frozen=True, slots=True)
 class Shape:
-    """Shape, surfaces and walls of a calculation; ``dimensions`` are geometric figures by quantity name."""
+    """Shape, surfaces and walls of a calculation; ``dimensions`` are geometric figures by quantity name.
+
+    ``finned_side`` is the side whose film has fins; ``fins_failed`` says that fins are stated and have a fault.
+    """
 
     name: str
     surfaces: tuple[Surface, ...]
@@ -31,6 +34,7 @@ class Shape:
     dimensions: dict[str, str]
     per_metre: bool
     finned_side: str = ""
+    fins_failed: bool = False
 
     @property
     def outermost(self) -> int:
@@ -56,6 +60,8 @@ class Shape:
         names = self.names()
         if name in names:
             return names[name]
+        if name in ("bare", "total finned") and self.fins_failed:
+            return None
         if name in ("bare", "total finned"):
             scope.collector.add("surface-unknown", place, f"no film has fins: there is no surface `{name}`",
                                 found=name, expected=", ".join(names))

@@ -12,7 +12,10 @@ import importlib
 
 import click
 
-COMMANDS = ("run", "new", "library", "verify", "schema", "sign", "issue", "revise", "register", "audit", "compare", "recall")
+COMMANDS = (
+    "run", "new", "library", "verify", "schema", "sign", "issue", "revise", "register", "audit",
+    "compare", "recall",
+)
 
 
 class _Commands(click.Group):

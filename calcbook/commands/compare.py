@@ -43,9 +43,10 @@ def command(
 ) -> None:
     """Compare two revisions and say what each change moved.
 
-    A side is a path, an issued copy (WC-101@A), or a file in git (git:REV:path). With one side, NEW is compared with
-    its last issued revision. The page goes to standard output and to comparison.md beside the record of NEW; with
-    --since, to standard output alone. Exit codes: 0 compared, 2 fault or usage, 3 a side did not converge.
+    A side is a path, an issued copy (WC-101@A), or a file in git (git:REV:path). With one side, NEW is
+    compared with its last issued revision. The page goes to standard output and to comparison.md beside the
+    record of NEW; with --since, to standard output alone. Exit codes: 0 compared, 2 fault or usage, 3 a side
+    did not converge.
     """
     from calcbook.faults import Faults
     from calcbook.interface import NotConverged

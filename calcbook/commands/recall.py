@@ -51,9 +51,9 @@ def command(
 ) -> None:
     """List every calculation file and issued record that rests on a source or a card.
 
-    With --value, solve each with the replacement and show what U and which verdicts would move. Nothing is written.
-    Exit codes: 0 looked through, 2 fault or usage; a file that cannot be read is told, and the others are looked
-    through.
+    With --value, solve each with the replacement and show what U and which verdicts would move. Nothing is
+    written. Exit codes: 0 looked through, 2 fault or usage; a file that cannot be read is told, and the
+    others are looked through.
     """
     from calcbook.book import find_calculations
     from calcbook.faults import Collector, Faults

@@ -1,14 +1,15 @@
 """What each change moved a result by: Shapley parts over the changes, from the engine's own answers.
 
-The part of a change is its effect averaged over every order in which the changes can be made. Parts do not depend
-on an order, and they add up to the whole difference; nothing is scaled. For an overall coefficient the parts are
-made in resistance as well, where terms in series add.
+The part of a change is its effect averaged over every order in which the changes can be made. Parts do not
+depend on an order, and they add up to the whole difference; nothing is scaled. For an overall coefficient the
+parts are made in resistance as well, where terms in series add.
 
-Up to ``EXACT_UP_TO`` changes every subset is solved: the subsets of one structure as samples of one call. Above
-that, orders are sampled in pairs (an order and its reverse) with a fixed seed, and each part has its standard
-error. A change that makes no calculation without others is joined with those it needs.
+Up to ``EXACT_UP_TO`` changes every subset is solved: the subsets of one structure as samples of one call.
+Above that, orders are sampled in pairs (an order and its reverse) with a fixed seed, and each part has its
+standard error. A change that makes no calculation without others is joined with those it needs.
 
-Source of the value: L. S. Shapley, A value for n-person games, Contributions to the Theory of Games II (1953).
+Source of the value: L. S. Shapley, A value for n-person games, Contributions to the Theory of Games II
+(1953).
 """
 
 from __future__ import annotations
@@ -25,7 +26,7 @@ from calcbook.chain.types import SERVICE, Chain
 from calcbook.properties import PropertyFault
 from calcbook.quantities import QuantityKind
 from calcbook.revisions.changes import Change
-from calcbook.revisions.mixtures import Mixer, has_sound_states, moved_inputs
+from calcbook.revisions.mixtures import Mixer, has_sound_states, moved_inputs, with_inputs
 from calcbook.revisions.named_results import conditions_of, is_coefficient, result_values
 from calcbook.revisions.sides import Side
 
@@ -75,9 +76,9 @@ class Attribution:
     """The parts of one result's difference, in the order of the file.
 
     ``interaction`` is the difference less the sum of what each part does alone. ``rest`` is what no change
-    explains; it is 0 within rounding. ``evaluations`` are the subsets solved, ``structures`` the chains built for
-    them, ``orders`` the sampled orders (0: exact). Without ``has_parts`` the result does not exist in every
-    mixture of the two revisions, and no parts can be given.
+    explains; it is 0 within rounding. ``evaluations`` are the subsets solved, ``structures`` the chains built
+    for them, ``orders`` the sampled orders (0: exact). Without ``has_parts`` the result does not exist in
+    every mixture of the two revisions, and no parts can be given.
     """
 
     result: str
@@ -182,7 +183,8 @@ class _Game:
         self.overrides: dict[int, dict[str, float]] = {}
 
     def played(self) -> tuple[dict[str, Array], Callable[[Array], Shares], int]:
-        """Values of every subset wanted, the function that makes shares of them, and the count of sampled orders.
+        """Values of every subset wanted, the function that makes shares of them, and the count of sampled
+        orders.
 
         Blocks are joined until every subset wanted makes a calculation.
         """
@@ -215,6 +217,7 @@ class _Game:
 
         Returns whether any were joined. A block is joined with a smallest set of those it needs.
         """
+        self._find_overrides()
         everything = frozenset(range(len(self.blocks)))
         joins = []
         for number in everything:
@@ -250,9 +253,11 @@ class _Game:
 
     def _stands(self, subset: frozenset[int]) -> bool:
         """Whether a subset of the blocks makes a calculation that has an answer."""
-        chain = self.mixer.chain(self._changes(subset))
+        chain = self.mixer.chain(self._changes(number for number in subset if number not in self.overrides))
         if chain is None:
             return False
+        moved = [self.overrides[number] for number in sorted(subset) if number in self.overrides]
+        chain = with_inputs(chain, {name: value for inputs in moved for name, value in inputs.items()})
         return has_sound_states(chain) and all(
             bool(np.isfinite(self._solved(chain, {}, 1, condition)[1]).all()) for condition in self.conditions
         )
@@ -401,7 +406,8 @@ class _Sample:
 
 
 def _pair(count: int, pair: int) -> tuple[tuple[int, ...], tuple[int, ...]]:
-    """An order of the blocks and its reverse, from a counter and the fixed seed, the same on every machine."""
+    """An order of the blocks and its reverse, from a counter and the fixed seed, the same on every
+    machine."""
     keys = [sha256(f"{SEED} / {pair} / {number}".encode()).digest() for number in range(count)]
     order = tuple(sorted(range(count), key=keys.__getitem__))
     return order, order[::-1]

@@ -1,7 +1,7 @@
 """What two revisions say differently: one change per fact, in the order of the file.
 
-Terms are matched by name, givens by symbol. A change that can move a result of the base case carries the edits
-that make it in the old file's tree, so that any subset of changes can be read and solved on its own.
+Terms are matched by name, givens by symbol. A change that can move a result of the base case carries the
+edits that make it in the old file's tree, so that any subset of changes can be read and solved on its own.
 """
 
 from __future__ import annotations
@@ -87,7 +87,8 @@ class Figure:
 
 
 def changes_between(old: Side, new: Side) -> tuple[Change, ...]:
-    """Every difference from the old side to the new one, in the order of the file; then book settings and cards."""
+    """Every difference from the old side to the new one, in the order of the file; then book settings and
+    cards."""
     return _Differences(old, new).found()
 
 
@@ -222,7 +223,8 @@ class _Differences:
     def _pairs(
         self, old: Node | None, new: Node | None, section: str
     ) -> Iterable[tuple[str, Scalar | None, Node | None, Node | None]]:
-        """Names of both sides in the order of the file, with the new key and both nodes, where they differ."""
+        """Names of both sides in the order of the file, with the new key and both nodes, where they
+        differ."""
         before, after = entries_of(old, section), entries_of(new, section)
         for name in merged(before, after):
             _, was = before.get(name, (None, None))
@@ -444,7 +446,8 @@ class _Differences:
             self._whole((section, name), "report", f"report, {name}", old, new, key, moves=name == "U on")
 
     def _other(self, section: str) -> None:
-        """A section without rules of its own: each entry is a change, of the kind that the section is called."""
+        """A section without rules of its own: each entry is a change, of the kind that the section is
+        called."""
         old, new = self._roots(section)
         if isinstance(old, Mapping) and isinstance(new, Mapping):
             for name, key, was, now in self._pairs(old, new, section):
@@ -590,7 +593,8 @@ class _Differences:
 
 
 def card_text(library: Library, name: str) -> str | None:
-    """What a digest binds of a card, by the name under which a calculation lists it; None where there is none."""
+    """What a digest binds of a card, by the name under which a calculation lists it; None where there is
+    none."""
     kind, _, card = name.partition(" ")
     find: dict[str, Callable[[str], object]] = {
         "method": library.method,

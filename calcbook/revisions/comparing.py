@@ -41,7 +41,8 @@ ABSENT = "not there"
 
 @dataclass(frozen=True, slots=True)
 class Verdict:
-    """A criterion or check whose state is another now. ``figure_was`` and ``figure_now`` show what decided it."""
+    """A criterion or check whose state is another now. ``figure_was`` and ``figure_now`` show what decided
+    it."""
 
     what: str
     case: str
@@ -119,8 +120,9 @@ class Unchanged:
 class Comparison:
     """Two revisions of a calculation, compared.
 
-    ``verdicts`` are criteria that flipped, ``checks`` limits that changed state. ``signoffs`` and ``feeds`` are
-    sentences from those who know them: sign-offs that are void, calculations that take a result of this one.
+    ``verdicts`` are criteria that flipped, ``checks`` limits that changed state. ``signoffs`` and ``feeds``
+    are sentences from those who know them: sign-offs that are void, calculations that take a result of this
+    one.
     """
 
     old: Side
@@ -268,7 +270,8 @@ def _against(item: CriterionResult | None, report: Report) -> str:
 
 
 def check_flips(old: Solved, new: Solved) -> tuple[Verdict, ...]:
-    """Limits whose state is another; one that came or went counts only where it was or is not simply within."""
+    """Limits whose state is another; one that came or went counts only where it was or is not simply
+    within."""
     before, after = _checks_by_name(old), _checks_by_name(new)
     found = []
     quiet = (ABSENT, "within", "not counting")

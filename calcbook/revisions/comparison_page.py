@@ -1,7 +1,7 @@
 """A comparison as blocks for a reader, in a short form for the record, and as data for programs.
 
-Numbers stand in the units of the new side's report. One fact a row, a stable order, and no row whose width follows
-another's.
+Numbers stand in the units of the new side's report. One fact a row, a stable order, and no row whose width
+follows another's.
 """
 
 from __future__ import annotations
@@ -52,7 +52,8 @@ def comparison_blocks(comparison: Comparison) -> tuple[Block, ...]:
 
 
 def short_blocks(comparison: Comparison) -> tuple[Block, ...]:
-    """The short form, for the record: verdicts that flipped, what moved the first result, open items, the link."""
+    """The short form, for the record: verdicts that flipped, what moved the first result, open items, the
+    link."""
     old = comparison.old
     blocks: list[Block] = [
         Paragraph(f"Compared with revision {old.revision} ({old.state}), digest {old.digest.whole}.")
@@ -89,7 +90,8 @@ def _head(comparison: Comparison) -> list[Block]:
 
 
 def side_name(side: Side) -> str:
-    """What the side was read from; of a path only its last name, so that the page is the same wherever it is made."""
+    """What the side was read from; of a path only its last name, so that the page is the same wherever it is
+    made."""
     return side.file_name if side.file_name.startswith("git:") else side.file_name.rpartition("/")[2]
 
 
@@ -238,24 +240,21 @@ def _error(attribution: Attribution, text: str) -> tuple[str, ...]:
 def _notes(attribution: Attribution, scale: Scale) -> Iterable[str]:
     if attribution.is_coefficient:
         was, moved = number(attribution.was, 8), number(attribution.resistance_difference, 8)
-        yield (
-            f"By hand: U_now = 1/(1/U_was + ΔR) = 1/(1/{was} + ({moved})) = {number(attribution.now, DIGITS)}"
-            " W/(m²·K)."
-        )
+        now = number(attribution.now, DIGITS)
+        yield f"By hand: U_now = 1/(1/U_was + ΔR) = 1/(1/{was} + ({moved})) = {now} W/(m²·K)."
     yield (
-        "Each part is the Shapley value of its change: its effect averaged over every order in which the changes can"
-        " be made. The parts add up to the whole difference; none is scaled."
+        "Each part is the Shapley value of its change: its effect averaged over every order in which the"
+        " changes can be made. The parts add up to the whole difference; none is scaled."
     )
-    yield (
-        f"Alone: the one change made to the old revision. Last: the one change made after all others. Interaction, the"
-        f" difference less the sum of what each does alone: {_with(scale.signed(attribution.interaction), scale)}."
-    )
+    yield "Alone: the one change made to the old revision. Last: the one change made after all others."
+    interaction = _with(scale.signed(attribution.interaction), scale)
+    yield f"Interaction, the difference less the sum of what each does alone: {interaction}."
     solved = counted(attribution.evaluations, "subset of the changes", "subsets of the changes")
     structures = counted(attribution.structures, "structure", "structures")
     if attribution.orders:
         yield (
-            f"Sampled: {attribution.orders} orders with a fixed seed, {solved} solved, {structures}; every order and its"
-            " reverse. The standard error is that of the mean."
+            f"Sampled: {attribution.orders} orders with a fixed seed, every order and its reverse;"
+            f" {solved} solved, {structures}. The standard error is that of the mean."
         )
     else:
         yield f"Exact: {solved} solved, {structures}."
@@ -402,8 +401,8 @@ def _software(comparison: Comparison) -> list[Block]:
         *blocks,
         Table(columns, tuple(_software_row(part, report) for part in comparison.software)),
         Paragraph(
-            f"Recorded with {_software_of(comparison.old)}; recomputed with {software_line()}. A difference within"
-            " the 10 digits of the results file counts as none."
+            f"Recorded with {_software_of(comparison.old)}; recomputed with {software_line()}."
+            " A difference within the 10 digits of the results file counts as none."
         ),
     ]
 
@@ -474,7 +473,8 @@ def _counts(comparison: Comparison) -> Iterable[str]:
 
 
 class Scale:
-    """One unit and one number of decimals for figures of a kind, so that a column of parts can be added up."""
+    """One unit and one number of decimals for figures of a kind, so that a column of parts can be added
+    up."""
 
     def __init__(
         self, kind: QuantityKind, report: Report, values: Iterable[float], is_difference: bool = False

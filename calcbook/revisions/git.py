@@ -1,7 +1,7 @@
 """What stood in git at a revision: files and lists of files, read with git's own plumbing.
 
-Nothing is checked out and nothing is written. Texts that git prints are never shown: a fault says in our words
-what cannot be read. Works in a shallow clone as far as its history reaches.
+Nothing is checked out and nothing is written. Texts that git prints are never shown: a fault says in our
+words what cannot be read. Works in a shallow clone as far as its history reaches.
 """
 
 from __future__ import annotations
@@ -59,7 +59,8 @@ class Commit:
         )
 
     def names(self, path: str) -> tuple[str, ...]:
-        """The names in a folder of the commit, by its path from the folder; none when there is no such folder."""
+        """The names in a folder of the commit, by its path from the folder; none when there is no such
+        folder."""
         inside = f"{_from_here(path)}/"
         finished = _git(self.folder, "ls-tree", "-z", "--name-only", self.digits, inside)
         if finished.returncode != 0:

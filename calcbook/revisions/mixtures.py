@@ -1,7 +1,8 @@
 """Mixtures of two revisions: the old file with some of the changes made, read and built like any other file.
 
-A change that only moves inputs of the chain is known by that; all others make another structure. Sections that
-cannot move a result of the base case (criteria, cases, accepted checks, assumptions) are left out of a mixture.
+A change that only moves inputs of the chain is known by that; all others make another structure. Sections
+that cannot move a result of the base case (criteria, cases, accepted checks, assumptions) are left out of a
+mixture.
 """
 
 from __future__ import annotations
@@ -118,6 +119,16 @@ def moved_inputs(before: Chain, after: Chain) -> dict[str, float] | None:
     return {
         name: item.value for name, item in after.inputs.items() if item.value != before.inputs[name].value
     }
+
+
+def with_inputs(chain: Chain, values: dict[str, float]) -> Chain:
+    """A chain with other figures for some of its inputs; those that it does not have are left out."""
+    moved = {
+        name: replace(chain.inputs[name], value=value)
+        for name, value in values.items()
+        if name in chain.inputs
+    }
+    return replace(chain, inputs={**chain.inputs, **moved})
 
 
 def has_sound_states(chain: Chain) -> bool:

@@ -5,10 +5,13 @@ from __future__ import annotations
 from collections.abc import Sequence
 from pathlib import Path
 
-from calcbook.faults import Fault, Faults, Place
+from calcbook.documents import read_file
+from calcbook.faults import Collector, Fault, Faults, Place
 from calcbook.revisions.comparing import Comparison, compare
+from calcbook.revisions.lifecycle import VOID, lifecycle_of
 from calcbook.revisions.seals import issued_copies
-from calcbook.revisions.sides import OUTPUT, Side, load_issued, load_side, output_of
+from calcbook.revisions.sides import OUTPUT, Side, links_of, load_issued, load_side, number_of, output_of
+from calcbook.revisions.signoffs import printed_name
 
 
 def compare_texts(
@@ -21,11 +24,45 @@ def compare_texts(
     where = output_folder(texts, folder, output)
     new = load_side(texts[-1], folder, where)
     old = load_side(texts[0], folder, where) if len(texts) == 2 else last_issued(new, where)
-    return compare(old, new, results), where
+    path = folder / texts[-1]
+    if not path.is_file():
+        return compare(old, new, results), where
+    return compare(old, new, results, void_signoffs(path, new, where), fed_by(path, new)), where
+
+
+def void_signoffs(path: Path, side: Side, output: Path) -> tuple[str, ...]:
+    """A sentence for each sign-off of a calculation file that its content has made void.
+
+    Raises ``Faults``: sign-offs-unreadable, seal-unreadable.
+    """
+    settings = side.calculation.settings
+    judged = lifecycle_of(path, side.solved, output).signoffs
+    return tuple(
+        f"{item.role} by {printed_name(settings, item.signoff.person)}, {item.signoff.date}: void."
+        f" {' '.join(item.why)}"
+        for item in judged
+        if item.signoff is not None and item.validity == VOID
+    )
+
+
+def fed_by(path: Path, side: Side) -> tuple[str, ...]:
+    """A sentence for each given, in the files beside a calculation file, that is taken from its results."""
+    found = []
+    for other in sorted(path.parent.glob("*.yaml")):
+        try:
+            root = read_file(other, collector=Collector()).root
+        except Faults:
+            continue  # told where that file is run
+        for link in links_of(root):
+            if link.calculation.casefold() == side.calculation.number.casefold():
+                revision = f"revision {link.revision}" if link.revision else "the file as it stands"
+                found.append(f"{number_of(root)}: {link.symbol} is {link.result} of {revision}")
+    return tuple(found)
 
 
 def last_issued(new: Side, output: Path) -> Side:
-    """The last issued revision before a side's own; the issued copy of its own revision where that is the first.
+    """The last issued revision before a side's own; the issued copy of its own revision where that is the
+    first.
 
     Raises ``Faults``: nothing-issued.
     """

@@ -1,4 +1,5 @@
-"""Recall: every calculation and issued record that rests on a source or a card, and what a replacement would do."""
+"""Recall: every calculation and issued record that rests on a source or a card, and what a replacement would
+do."""
 
 from __future__ import annotations
 
@@ -40,10 +41,12 @@ CURRENT_FILE = "calculation file"
 
 @dataclass(frozen=True, slots=True)
 class Wanted:
-    """What is recalled: a source text or a card, with the replacement (empty: none) and the places it is meant for.
+    """What is recalled: a source text or a card, with the replacement (empty: none) and the places it is
+    meant for.
 
-    For a source, ``value`` is a quantity; for a card, `OLD=NEW` with a figure as the card writes it, or the name of
-    one of its constants, on the left. Without ``only`` every figure of the source with a fitting unit is replaced.
+    For a source, ``value`` is a quantity; for a card, `OLD=NEW` with a figure as the card writes it, or the
+    name of one of its constants, on the left. Without ``only`` every figure of the source with a fitting unit
+    is replaced.
     """
 
     source: str = ""
@@ -63,7 +66,8 @@ class Rest:
 
 @dataclass(frozen=True)
 class Effect:
-    """What the replacement does: U in service, the places replaced, the verdicts and check states that change."""
+    """What the replacement does: U in service, the places replaced, the verdicts and check states that
+    change."""
 
     was: Solved
     now: Solved
@@ -94,7 +98,8 @@ class Recall:
 
 
 def recall(files: Iterable[tuple[Path, Path]], wanted: Wanted) -> Recall:
-    """Look through calculation files, each with its output folder, and through the issued copies in those folders.
+    """Look through calculation files, each with its output folder, and through the issued copies in those
+    folders.
 
     Raises ``Faults`` (replacement-unfit) for a replacement that cannot be read, or that fits nothing found.
     """
@@ -271,7 +276,8 @@ def _replaced(node: Node, path: tuple[str, ...], section: str, value: Quantity) 
 
 
 def _with_figure(node: Mapping, value: Quantity) -> Mapping:
-    """A mapping with its `value:`, or the limit of its `that:`, replaced; itself where the dimension is another."""
+    """A mapping with its `value:`, or the limit of its `that:`, replaced; itself where the dimension is
+    another."""
     entries = []
     for key, inner in node.entries:
         text = text_of(inner) if isinstance(inner, Scalar) else ""
@@ -372,7 +378,8 @@ def _card_text(library: Library, folder: str, card: str, house: bool) -> str:
 
 
 def _corrected(text: str, card: str, old: str, new: str) -> str:
-    """A card's text with a figure, or the value of a constant, replaced wherever the card computes with it."""
+    """A card's text with a figure, or the value of a constant, replaced wherever the card computes with
+    it."""
     number = re.compile(rf"(?<![\w.]){re.escape(old)}(?![\w.])")
     constant = re.compile(rf"^(\s+{re.escape(old)}\s*:\s*)(.+)$")
     section, lines, count = "", [], 0

@@ -42,8 +42,8 @@ Data = Mapping[str, object]
 class Side:
     """A calculation as one side of a comparison.
 
-    ``document`` is the file as it stood, ``tree`` the same with table files and linked values written out in place.
-    ``results`` is the results file that was recorded for this content, None where there is none.
+    ``document`` is the file as it stood, ``tree`` the same with table files and linked values written out in
+    place. ``results`` is the results file that was recorded for this content, None where there is none.
     ``software`` is what that results file was made with (empty without one). ``state`` says how the side
     stands: `issued, final`, `issued, preliminary`, or `not issued`.
     """
@@ -141,7 +141,8 @@ def _from_git(text: str, folder: Path) -> Side:
 
 
 def load_from_commit(folder: Path, revision: str, path: str) -> Side:
-    """A calculation file as it stood in git, with the book settings, house cards and table files beside it."""
+    """A calculation file as it stood in git, with the book settings, house cards and table files beside
+    it."""
     whole = folder / path
     here = next(parent for parent in (whole.parent, *whole.parent.parents) if parent.is_dir())
     inside = whole.parent.relative_to(here).as_posix()
@@ -187,12 +188,13 @@ def _take_out(commit: Commit, inside: str, target: Path, name: str) -> None:
     _write_out(
         commit, inside, target, (name, BOOK_FILE, *tables, *(f"{HOUSE_CARDS}/{item}" for item in cards))
     )
-    links = _linked(target / name)
+    root = read_file(target / name, collector=Collector()).root
+    links = {link.calculation for link in links_of(root) if NUMBER.fullmatch(link.calculation)}
     if not links:
         return
     _write_out(commit, inside, target, (item for item in commit.names(inside) if item.endswith(".yaml")))
     output = read_settings(target).output or OUTPUT
-    for number in links:
+    for number in sorted(links):
         copies = f"{output}/{number}/{ISSUED}"
         names = [f"{copies}/{copy}" for copy in commit.names(f"{inside}/{copies}")]
         _write_out(
@@ -207,17 +209,38 @@ def _write_out(commit: Commit, inside: str, target: Path, names: Iterable[str]) 
         wanted[name].write_bytes(data)
 
 
-def _linked(path: Path) -> tuple[str, ...]:
-    """The numbers of the calculations that a file takes givens from."""
-    root = read_file(path, collector=Collector()).root
+@dataclass(frozen=True, slots=True)
+class LinkOf:
+    """A given that a file takes from another calculation, as it is written."""
+
+    symbol: str
+    calculation: str
+    result: str
+    revision: str
+
+
+def links_of(root: Node) -> tuple[LinkOf, ...]:
+    """The links of a calculation file's givens, from its tree."""
     givens = root.get("givens") if isinstance(root, MappingNode) else None
-    numbers = []
-    for _, given in givens.entries if isinstance(givens, MappingNode) else ():
+    found = []
+    for key, given in givens.entries if isinstance(givens, MappingNode) else ():
         link = given.get("from") if isinstance(given, MappingNode) else None
-        number = link.get("calculation") if isinstance(link, MappingNode) else None
-        if isinstance(number, Scalar) and NUMBER.fullmatch(number.text):
-            numbers.append(number.text)
-    return tuple(dict.fromkeys(numbers))
+        if isinstance(link, MappingNode):
+            found.append(
+                LinkOf(key.text, *(_word(link, name) for name in ("calculation", "result", "revision")))
+            )
+    return tuple(found)
+
+
+def number_of(root: Node) -> str:
+    """The number that stands in a calculation file's title block; empty where there is none."""
+    head = root.get("calculation") if isinstance(root, MappingNode) else None
+    return _word(head, "number") if isinstance(head, MappingNode) else ""
+
+
+def _word(node: MappingNode, key: str) -> str:
+    value = node.get(key)
+    return value.text if isinstance(value, Scalar) else ""
 
 
 # --- reading ----------------------------------------------------------------------------------------
@@ -284,7 +307,8 @@ def _json(text: str, called: str) -> Data:
 
 
 def _written_out(root: Node, folder: Path, calculation: Calculation) -> Node:
-    """A tree that stands by itself: table files as tables, and the value of every given that is taken from elsewhere."""
+    """A tree that stands by itself: table files as tables, and the value of every given that is taken from
+    elsewhere."""
     root = _with_tables(root, folder)
     givens = root.get("givens") if isinstance(root, MappingNode) else None
     if not isinstance(root, MappingNode) or not isinstance(givens, MappingNode):
@@ -302,7 +326,8 @@ def _written_out(root: Node, folder: Path, calculation: Calculation) -> Node:
 
 
 def _stated(given: Given) -> tuple[tuple[Scalar, Node], ...]:
-    """The value and source of a given that is taken from another calculation, as the file could state them."""
+    """The value and source of a given that is taken from another calculation, as the file could state
+    them."""
     place = given.value.place
     texts = (("value", given.value.text), ("source", given.source))
     return tuple((Scalar(key, place), Scalar(text, place, "quoted")) for key, text in texts)

@@ -24,7 +24,8 @@ BESIDE = (".signoffs.yaml", ".form.yaml")
 
 @dataclass(frozen=True)
 class Since:
-    """What became of every calculation file since a git revision; ``failed`` holds the texts of faults by file."""
+    """What became of every calculation file since a git revision; ``failed`` holds the texts of faults by
+    file."""
 
     revision: str
     compared: tuple[Comparison, ...]

@@ -1,7 +1,7 @@
 """Time of a comparison with twelve changes, as a ratio to one evaluation of its calculation.
 
-Twelve changes are 4096 subsets, in service only. Run it by hand: `python tests/benchmarks/comparison.py`. It prints
-and asserts nothing about time: machines differ.
+Twelve changes are 4096 subsets, in service only. Run it by hand: `python tests/benchmarks/comparison.py`. It
+prints and asserts nothing about time: machines differ.
 """
 
 from __future__ import annotations
@@ -22,8 +22,16 @@ from calcbook.revisions.sides import load_side
 
 EXAMPLE = Path(__file__).resolve().parents[2] / "calcs" / "wc-101.yaml"
 EDITS = {
-    "d_i": "15.8 mm", "d_o": "19.1 mm", "L": "4.9 m", "N": "60", "m_hot": "18.5 kg/s", "T_hot": "73 degC",
-    "T_cold": "30 degC", "R_fi": "0.0001 m^2 K/W", "R_fo": "0.0004 m^2 K/W", "h_o": "5000 W/(m^2 K)",
+    "d_i": "15.8 mm",
+    "d_o": "19.1 mm",
+    "L": "4.9 m",
+    "N": "60",
+    "m_hot": "18.5 kg/s",
+    "T_hot": "73 degC",
+    "T_cold": "30 degC",
+    "R_fi": "0.0001 m^2 K/W",
+    "R_fo": "0.0004 m^2 K/W",
+    "h_o": "5000 W/(m^2 K)",
 }
 REPEATS = 7
 
@@ -63,10 +71,15 @@ def main() -> None:
         parts = best(lambda: attribute(old, new, changes, ("U_service",)))  # noqa: B023
         whole = best(lambda: compare(old, new))  # noqa: B023
         (found,) = attribute(old, new, changes, ("U_service",))
-        print(f"eleven figures and {words}: {len(found.parts)} changes, {found.evaluations} evaluations, "
-              f"{found.structures} structures", file=sys.stdout)
-        print(f"  one evaluation {1e3 * one:.2f} ms; attribution {1e3 * parts:.0f} ms, {parts / one:.0f} evaluations' time; "
-              f"comparison {1e3 * whole:.0f} ms, {whole / one:.0f}; one by one {found.evaluations} evaluations")
+        print(
+            f"eleven figures and {words}: {len(found.parts)} changes, {found.evaluations} evaluations, "
+            f"{found.structures} structures",
+            file=sys.stdout,
+        )
+        print(
+            f"  one evaluation {1e3 * one:.2f} ms; attribution {1e3 * parts:.0f} ms, {parts / one:.0f} evaluations' time; "
+            f"comparison {1e3 * whole:.0f} ms, {whole / one:.0f}; one by one {found.evaluations} evaluations"
+        )
 
 
 if __name__ == "__main__":

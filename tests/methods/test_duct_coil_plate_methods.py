@@ -117,7 +117,7 @@ def test_situation_is_whole(name: str) -> None:
 
 
 def test_schmidt_coil_over_a_grid() -> None:
-    """Largest deviation found: 4e-16."""
+    """Largest deviation found: 4.5e-16."""
     for ratio in (0.012, 0.03, 0.1, 0.2):
         critical = fluids.helical_transition_Re_Schmidt(ratio, 1.0)
         assert values("schmidt-coil-1967", Re=1e4, Pr=1.0, x_c=ratio)["Re_c"] == pytest.approx(
@@ -297,7 +297,7 @@ def test_duct_rises_with_speed(re: float, pr: float, more: float, ratio: float) 
 @settings(deadline=None)
 @given(ratio=st.floats(0.0, 0.85), more=st.floats(0.001, 0.01))
 def test_flatter_rectangle_has_the_larger_figure(ratio: float, more: float) -> None:
-    """Up to 0.85: nearer to the square the printed polynomial at constant temperature is flat within its fit."""
+    """Up to 0.85: nearer to the square the polynomial at constant temperature is flat within its fit."""
     for end in ("t", "h"):
         name = f"duct-laminar-rectangle-{end}"
         assert result(name, Re=500.0, Pr=1.0, r_s=ratio + more) < result(name, Re=500.0, Pr=1.0, r_s=ratio)
@@ -310,7 +310,7 @@ def test_flatter_rectangle_has_the_larger_figure(ratio: float, more: float) -> N
 
 
 def test_martin_over_a_grid() -> None:
-    """fluids and ht in the form of the VDI Heat Atlas. Largest deviation found: 8e-16."""
+    """fluids and ht in the form of the VDI Heat Atlas. Largest deviation found: 2.3e-16."""
     for angle in (10, 30, 45, 60, 80):
         for re in (200.0, 1000.0, 1999.0, 2001.0, 1e4):
             for pr in (0.7, 5.0, 100.0):
@@ -328,7 +328,7 @@ def test_constants_of_martin_in_both_prints() -> None:
 
 
 def test_kumar_over_a_grid() -> None:
-    """The column is 90 degrees less the angle to the flow. Largest deviation found: 2e-16."""
+    """The column is 90 degrees less the angle to the flow. Largest deviation found: 2.3e-16."""
     for column in (30, 45, 50, 60, 65):
         for re in np.geomspace(0.1, 9999.0, 30):
             for pr in (0.7, 5.0, 100.0):
@@ -337,7 +337,7 @@ def test_kumar_over_a_grid() -> None:
 
 
 def test_sense_of_the_angle_of_kumar() -> None:
-    """Against martin-1996 at the same angle to the flow the complement is within 30 %, the plain sense is not."""
+    """Against martin-1996 at the same angle to the flow the complement is within 30 %, the plain not."""
     for angle in (30, 60):
         martin = result("martin-1996", Re=1000.0, Pr=5.0, beta_c=math.radians(angle))
         assert result("kumar-1984", Re=1000.0, Pr=5.0, beta_c=math.radians(angle)) == pytest.approx(
@@ -347,7 +347,7 @@ def test_sense_of_the_angle_of_kumar() -> None:
 
 
 def test_muley_manglik_over_a_grid() -> None:
-    """ht with its polynomial in the enlargement, of which one digit pair is swapped, replaced by the paper's."""
+    """ht with its polynomial in the enlargement, in which two digits are swapped, replaced by the paper's."""
     for enlargement in (1.0, 1.1, 1.29, 1.5):
         swapped = 20.7803 - 50.9372 * enlargement + 41.1585 * enlargement**2 - 10.1507 * enlargement**3
         printed = 20.78 - 50.94 * enlargement + 41.16 * enlargement**2 - 10.51 * enlargement**3

@@ -1,4 +1,5 @@
-"""Which change moved U: the check values, the rules that parts obey, and what happens to changes that need others."""
+"""Which change moved U: the check values, the rules that parts obey, and what happens to changes that need
+others."""
 
 from __future__ import annotations
 
@@ -26,8 +27,8 @@ def parts_of(attribution: Attribution) -> dict[str, float]:
 
 
 # --- check values ---------------------------------------------------------------------------------------
-# Worked by hand from U_o = 1/(1/h_o + R_fo + d_o ln(d_o/d_i)/(2k) + (R_fi + 1/h_i) d_o/d_i); every digit that the
-# arithmetic was stated to is tested.
+# Worked by hand from U_o = 1/(1/h_o + R_fo + d_o ln(d_o/d_i)/(2k) + (R_fi + 1/h_i) d_o/d_i); every digit that
+# the arithmetic was stated to is tested.
 
 
 def test_one_raised_allowance_gives_the_check_values() -> None:
@@ -56,7 +57,9 @@ def test_two_changes_give_the_check_values() -> None:
     fouling, film = by_id["givens/R_fi"], by_id["givens/h_o"]
     assert (round(fouling.alone, 2), round(film.alone, 2)) == (-86.45, -68.05)
     assert (round(fouling.part, 3), round(film.part, 3)) == (-78.623, -60.219)
-    assert attribution.interaction == pytest.approx(attribution.difference - fouling.alone - film.alone, rel=1e-12)
+    assert attribution.interaction == pytest.approx(
+        attribution.difference - fouling.alone - film.alone, rel=1e-12
+    )
     assert (attribution.evaluations, attribution.structures) == (4, 1)
 
 
@@ -64,7 +67,9 @@ def test_the_page_shows_the_check_values_largest_first() -> None:
     text = markdown(comparison_blocks(compare(side_of(STATED), side_of(FOULED_AND_SLOW))))
     rows = text.split("```")[1].splitlines()[1:]
     assert [row.split()[0] for row in rows] == ["673.912", "−78.623", "−60.219", "535.070"]
-    assert all(row[:14].strip() == row.split()[0] and row[14] == " " for row in rows), "the figures stand in one column"
+    assert all(row[:14].strip() == row.split()[0] and row[14] == " " for row in rows), (
+        "the figures stand in one column"
+    )
     assert rows[1].endswith("R_fi, inside allowance: was 1.8e-4 m^2 K/W, now 3.5e-4 m^2 K/W")
 
 
@@ -105,7 +110,9 @@ def test_exact_parts_are_the_mean_over_every_order(count: int, data: st.DataObje
     assert math.fsum(shares.part) == pytest.approx(values[-1] - values[0], abs=1e-9 * 1e3)
     assert shares.alone == pytest.approx([values[1 << player] - values[0] for player in range(count)])
     last = (1 << count) - 1
-    assert shares.last == pytest.approx([values[last] - values[last ^ 1 << player] for player in range(count)])
+    assert shares.last == pytest.approx(
+        [values[last] - values[last ^ 1 << player] for player in range(count)]
+    )
 
 
 def test_a_sampled_part_has_an_error_that_covers_the_exact_one(monkeypatch: pytest.MonkeyPatch) -> None:
@@ -117,7 +124,8 @@ def test_a_sampled_part_has_an_error_that_covers_the_exact_one(monkeypatch: pyte
     assert math.fsum(part.part for part in sampled.parts) == pytest.approx(sampled.difference, rel=1e-9)
     for one, other in zip(exact.parts, sampled.parts, strict=True):
         assert (one.alone, one.last) == pytest.approx((other.alone, other.last), rel=1e-12)
-        # Five standard errors: with seven parts a correct estimate misses one in a million runs, and the seed is fixed.
+        # Five standard errors: with seven parts a correct estimate misses one in a million runs, and the seed
+        # is fixed.
         assert abs(one.part - other.part) <= 5.0 * other.error + 1e-9 * exact.was
         assert other.error > 0.0 and one.error == 0.0
     again = compare(old, new).attributions[0]
@@ -129,8 +137,15 @@ def test_a_sampled_part_has_an_error_that_covers_the_exact_one(monkeypatch: pyte
 def scaled(text: str, factor: float) -> str:
     """Every given of the stated calculation multiplied; the bore stays inside the tube."""
     figures = {"d_o": 19.05, "d_i": 14.83, "k": 16, "h_i": 5000, "h_o": 1500, "R_fo": 1.8e-4, "R_fi": 1.8e-4}
-    units = {"d_o": "mm", "d_i": "mm", "k": "W/(m K)", "h_i": "W/(m^2 K)", "h_o": "W/(m^2 K)", "R_fo": "m^2 K/W",
-             "R_fi": "m^2 K/W"}
+    units = {
+        "d_o": "mm",
+        "d_i": "mm",
+        "k": "W/(m K)",
+        "h_i": "W/(m^2 K)",
+        "h_o": "W/(m^2 K)",
+        "R_fo": "m^2 K/W",
+        "R_fi": "m^2 K/W",
+    }
     for symbol, figure in figures.items():
         # A bore that grows less than the outside diameter, so that every mixture has a wall.
         by = 1.0 + (factor - 1.0) * (0.2 if symbol == "d_i" else 1.0)
@@ -141,16 +156,27 @@ def scaled(text: str, factor: float) -> str:
 def test_thirteen_changes_of_a_real_calculation_are_sampled_and_add_up() -> None:
     text = example("wc-101")
     new = text
-    for symbol, value in {"d_i": "15.9 mm", "d_o": "19.3 mm", "L": "5 m", "N": "60", "m_hot": "19 kg/s", "T_hot": "72 degC",
-                          "T_cold": "30 degC", "R_fi": "0.0001 m^2 K/W", "R_fo": "0.0004 m^2 K/W",
-                          "h_o": "5000 W/(m^2 K)"}.items():
+    for symbol, value in {
+        "d_i": "15.9 mm",
+        "d_o": "19.3 mm",
+        "L": "5 m",
+        "N": "60",
+        "m_hot": "19 kg/s",
+        "T_hot": "72 degC",
+        "T_cold": "30 degC",
+        "R_fi": "0.0001 m^2 K/W",
+        "R_fo": "0.0004 m^2 K/W",
+        "h_o": "5000 W/(m^2 K)",
+    }.items():
         new = with_value(new, symbol, value)
     new = new.replace("4 bara", "5 bara").replace("stainless-316-kaschnitz-2017", "stainless-316-mills-2002")
     new = new.replace("U on: outside ", "U on: inside ")
     (attribution,) = compare(example_side(text), example_side(new)).attributions
     assert len(attribution.parts) == 13 and attribution.orders == 2 * module.PAIRS
     assert attribution.structures == 4
-    assert math.fsum(part.part for part in attribution.parts) == pytest.approx(attribution.difference, abs=1e-9 * attribution.was)
+    assert math.fsum(part.part for part in attribution.parts) == pytest.approx(
+        attribution.difference, abs=1e-9 * attribution.was
+    )
     assert abs(attribution.rest) <= 1e-9 * attribution.was
 
 
@@ -172,7 +198,8 @@ def stated_files(draw: st.DrawFn) -> str:
         text = text.replace("  - {name: inside deposit, kind: fouling, resistance: R_fi, on: inside}\n", "")
     if draw(st.booleans()):
         text = text.replace("coefficient: h_i, on: inside}", "stream: hot, situation: inside-tube}").replace(
-            "coefficient: h_o, on: outside}", "coefficient: h_o, on: outside, temperature: 25 degC}")
+            "coefficient: h_o, on: outside}", "coefficient: h_o, on: outside, temperature: 25 degC}"
+        )
         method = draw(st.sampled_from(("", ", method: gnielinski-1976", ", method: petukhov-kirillov-1970")))
         text = text.replace("situation: inside-tube", f"situation: inside-tube{method}")
         text = text.replace("geometry: {shape: tube,", "geometry: {shape: tube, length: 3 m,")
@@ -193,11 +220,15 @@ def test_parts_add_up_for_random_pairs(old: str, new: str) -> None:
     for attribution in compare(side_of(old), side_of(new), ("U_service", "U_clean")).attributions:
         largest = max(attribution.was, attribution.now)
         assert attribution.has_parts
-        assert math.fsum(part.part for part in attribution.parts) == pytest.approx(attribution.difference, abs=1e-9 * largest)
+        assert math.fsum(part.part for part in attribution.parts) == pytest.approx(
+            attribution.difference, abs=1e-9 * largest
+        )
         assert abs(attribution.rest) <= 1e-9 * largest
         # In resistance to 1e-9 of the larger of the two, 1/U.
         in_resistance = math.fsum(part.resistance for part in attribution.parts)
-        assert in_resistance == pytest.approx(attribution.resistance_difference, abs=1e-9 / min(attribution.was, attribution.now))
+        assert in_resistance == pytest.approx(
+            attribution.resistance_difference, abs=1e-9 / min(attribution.was, attribution.now)
+        )
 
 
 @SLOW
@@ -242,8 +273,16 @@ def test_adding_to_an_allowance_alone_gives_its_referred_increment(increment: fl
     assert attribution.parts[0].resistance == pytest.approx(referred, abs=1e-9 / attribution.now)
 
 
-@pytest.mark.parametrize(("symbol", "value"), [("d_o", "0.01905 m"), ("d_i", "1.483 cm"), ("h_o", "1.5 kW/(m^2 K)"),
-                                               ("R_fo", "0.18e-3 m^2 K/W"), ("k", "0.16 W/(cm K)")])
+@pytest.mark.parametrize(
+    ("symbol", "value"),
+    [
+        ("d_o", "0.01905 m"),
+        ("d_i", "1.483 cm"),
+        ("h_o", "1.5 kW/(m^2 K)"),
+        ("R_fo", "0.18e-3 m^2 K/W"),
+        ("k", "0.16 W/(cm K)"),
+    ],
+)
 def test_a_pure_change_of_unit_moves_nothing(symbol: str, value: str) -> None:
     comparison = compare(side_of(STATED), side_of(with_value(STATED, symbol, value)))
     (change,) = comparison.changes
@@ -265,12 +304,18 @@ def test_changes_that_make_no_calculation_apart_are_joined_and_named() -> None:
     assert set(joined.changes) == {"givens/d_i", "givens/D_1", "geometry/inside diameter"}
     assert joined.part == pytest.approx(0.0, abs=1e-9 * attribution.was)
     assert parts_of(attribution)["givens/h_o"] == pytest.approx(attribution.difference, rel=1e-9)
-    assert "Joined, because they make no calculation apart: givens/" in markdown(comparison_blocks(comparison))
+    assert "Joined, because they make no calculation apart: givens/" in markdown(
+        comparison_blocks(comparison)
+    )
 
 
 def test_a_state_that_no_fluid_has_joins_the_changes_that_avoid_it() -> None:
     """Water at 150 degC needs its pressure: at the old pressure the stated liquid would be vapour."""
-    hot = example("wc-101").replace("flow: m_hot   ", "phase: liquid\n    flow: m_hot   ").replace("4 bara", "1.5 bara")
+    hot = (
+        example("wc-101")
+        .replace("flow: m_hot   ", "phase: liquid\n    flow: m_hot   ")
+        .replace("4 bara", "1.5 bara")
+    )
     new = with_value(hot, "T_hot", "150 degC").replace("1.5 bara", "9 bara")
     new = new.replace("T_hot: {value: 66 degC", "T_hot: {value: 140 degC")
     (attribution,) = compare(example_side(hot), example_side(new)).attributions
@@ -283,7 +328,11 @@ def test_another_method_and_another_material_are_changes_like_any_other() -> Non
     new = new.replace("stainless-316-kaschnitz-2017", "stainless-316-mills-2002")
     new = with_value(new, "R_fo", "0.0004 m^2 K/W")
     (attribution,) = compare(example_side(text), example_side(new)).attributions
-    assert set(parts_of(attribution)) == {"resistances/tube-side film/method", "resistances/tube wall/material", "givens/R_fo"}
+    assert set(parts_of(attribution)) == {
+        "resistances/tube-side film/method",
+        "resistances/tube wall/material",
+        "givens/R_fo",
+    }
     assert (attribution.evaluations, attribution.structures) == (8, 4)
     assert abs(attribution.rest) <= 1e-9 * attribution.was
     assert all(part.part for part in attribution.parts)
@@ -291,7 +340,9 @@ def test_another_method_and_another_material_are_changes_like_any_other() -> Non
 
 def alone_by_hand(old: str, changed: str) -> float:
     """What one change does alone, from two calculations solved apart from any comparison."""
-    was, now = (side.solved.base.results["U_service"].value for side in (example_side(old), example_side(changed)))
+    was, now = (
+        side.solved.base.results["U_service"].value for side in (example_side(old), example_side(changed))
+    )
     return now - was
 
 
@@ -316,18 +367,36 @@ def test_effects_alone_are_those_of_files_solved_apart(name: str, edits: tuple[t
     for symbol, value in edits:
         part = by_id[f"givens/{symbol}"]
         # 1e-9 of U: samples of one call and files apart give the same answer to its last digits.
-        assert part.alone == pytest.approx(alone_by_hand(old, with_value(old, symbol, value)), abs=1e-9 * attribution.was)
+        assert part.alone == pytest.approx(
+            alone_by_hand(old, with_value(old, symbol, value)), abs=1e-9 * attribution.was
+        )
 
 
 def test_any_result_can_be_attributed() -> None:
-    old, new = example("wc-101"), with_value(with_value(example("wc-101"), "R_fo", "0.0005 m^2 K/W"), "m_hot", "20 kg/s")
-    names = ("U_clean", "cleanliness", "excess_surface", "heat_flux_service", "T tube wall to shell-side deposit service",
-             "T outside surface clean", "h tube-side film service", "R tube wall clean", "Re hot", "speed hot",
-             "U_service on inside", "UA_service")
+    old, new = (
+        example("wc-101"),
+        with_value(with_value(example("wc-101"), "R_fo", "0.0005 m^2 K/W"), "m_hot", "20 kg/s"),
+    )
+    names = (
+        "U_clean",
+        "cleanliness",
+        "excess_surface",
+        "heat_flux_service",
+        "T tube wall to shell-side deposit service",
+        "T outside surface clean",
+        "h tube-side film service",
+        "R tube wall clean",
+        "Re hot",
+        "speed hot",
+        "U_service on inside",
+        "UA_service",
+    )
     sides: tuple[Side, Side] = (example_side(old), example_side(new))
     for attribution in compare(*sides, names).attributions:
         was, now = (side.solved.base.results[attribution.result].value for side in sides)
         assert (attribution.was, attribution.now) == (was, now)
         scale = max(abs(was), abs(now))
-        assert math.fsum(part.part for part in attribution.parts) == pytest.approx(now - was, abs=1e-9 * scale)
+        assert math.fsum(part.part for part in attribution.parts) == pytest.approx(
+            now - was, abs=1e-9 * scale
+        )
         assert abs(attribution.rest) <= 1e-9 * scale

@@ -39,13 +39,18 @@ def givens_of_examples() -> list[tuple[str, str, str]]:
             continue
         for symbol, number, unit in GIVEN.findall(text.partition("\ngivens:")[2]):
             value = float(number)
-            moved = str(int(value) + 1) if not unit else f"{value + 0.5 if 'deg' in unit and '(' not in unit else value * 1.02:.8g}"
+            moved = (
+                str(int(value) + 1)
+                if not unit
+                else f"{value + 0.5 if 'deg' in unit and '(' not in unit else value * 1.02:.8g}"
+            )
             found.append((path.stem, symbol, f"{moved}{unit}"))
     return found
 
 
 def dependents(chain: Chain, symbol: str) -> set[str]:
-    """Every figure that follows from a given, found by walking the steps; temperatures of the circuit follow the heat."""
+    """Every figure that follows from a given, found by walking the steps; temperatures of the circuit follow
+    the heat."""
     steps = [*chain.steps, *chain.circuit]
     coupled = []
     for element in chain.elements:
@@ -62,13 +67,19 @@ def dependents(chain: Chain, symbol: str) -> set[str]:
         more = {step.id for step in steps if set(step.inputs.values()) & found}
         for element in chain.elements:
             if isinstance(element, Group) and any(
-                    candidate.coefficient in found for branch in element.branches for candidate in branch.candidates):
+                candidate.coefficient in found
+                for branch in element.branches
+                for candidate in branch.candidates
+            ):
                 more.add(chain.results[f"h {element.name}"])
                 more |= {f"{element.name}/h of {branch.name}" for branch in element.branches}
             if isinstance(element, Layer) and element.resistance in found:
                 more.add(chain.results[f"R {element.name}"])
-        bulks = {chain.inner.bulk, chain.outer.bulk, *(branch.reference for group in (chain.inner, chain.outer)
-                                                       for branch in group.branches)}
+        bulks = {
+            chain.inner.bulk,
+            chain.outer.bulk,
+            *(branch.reference for group in (chain.inner, chain.outer) for branch in group.branches),
+        }
         if chain.has_temperatures and (found | more) & {chain.results["R total"], *bulks}:
             more |= set(coupled)
         if more <= found:
@@ -77,7 +88,9 @@ def dependents(chain: Chain, symbol: str) -> set[str]:
 
 
 @pytest.mark.parametrize(("name", "symbol", "value"), givens_of_examples())
-def test_a_seeded_change_shows_exactly_that_input_and_its_dependents(name: str, symbol: str, value: str) -> None:
+def test_a_seeded_change_shows_exactly_that_input_and_its_dependents(
+    name: str, symbol: str, value: str
+) -> None:
     old = example_side(example(name))
     new = example_side(with_value(example(name), symbol, value))
     comparison = compare(old, new)
@@ -86,7 +99,9 @@ def test_a_seeded_change_shows_exactly_that_input_and_its_dependents(name: str, 
     chain = new.solved.chain
     followers = dependents(chain, symbol)
     moved = {effect.term for effect in comparison.terms if effect.difference}
-    assert moved <= {element.name for element in chain.elements if chain.results[f"R {element.name}"] in followers}
+    assert moved <= {
+        element.name for element in chain.elements if chain.results[f"R {element.name}"] in followers
+    }
     if followers == {f"given/{symbol}"}:
         assert not any(effect.difference for effect in comparison.results)
     else:
@@ -99,10 +114,16 @@ def test_a_seeded_change_shows_exactly_that_input_and_its_dependents(name: str, 
 
 
 def test_a_value_and_its_source_are_one_change() -> None:
-    new = with_value(STATED, "R_fo", "2.2e-4 m^2 K/W").replace("is: outside allowance, source: standard 3",
-                                                              "is: outside allowance, source: inspection 9")
+    new = with_value(STATED, "R_fo", "2.2e-4 m^2 K/W").replace(
+        "is: outside allowance, source: standard 3", "is: outside allowance, source: inspection 9"
+    )
     change = one(STATED, new)
-    assert (change.id, change.kind, change.was, change.now) == ("givens/R_fo", "given", "1.8e-4 m^2 K/W", "2.2e-4 m^2 K/W")
+    assert (change.id, change.kind, change.was, change.now) == (
+        "givens/R_fo",
+        "given",
+        "1.8e-4 m^2 K/W",
+        "2.2e-4 m^2 K/W",
+    )
     assert (change.source_was, change.source_now) == ("standard 3", "inspection 9")
     assert change.moves and change.quantity_was is not None and change.quantity_was.value == 1.8e-4
 
@@ -112,7 +133,11 @@ def test_a_value_and_its_source_are_one_change() -> None:
     [
         (("R_fi: {value: 1.8e-4 m^2 K/W", "R_fi: {value: 0.18 m^2 K/kW"), "unit only", "givens/R_fi"),
         (("R_fi: {value: 1.8e-4 m^2 K/W", "R_fi: {value: 0.00018 m^2 K/W"), "text only", "givens/R_fi"),
-        (("inside allowance, source: standard 3", "inside allowance, source: standard 4"), "source only", "givens/R_fi"),
+        (
+            ("inside allowance, source: standard 3", "inside allowance, source: standard 4"),
+            "source only",
+            "givens/R_fi",
+        ),
         (("is: inside allowance", "is: allowance inside"), "text only", "givens/R_fi/is"),
         (("purpose: Compare two", "purpose: To compare two"), "text only", "purpose"),
         (("title: Stated coefficients", "title: Coefficients stated"), "text only", "calculation/title"),
@@ -126,20 +151,61 @@ def test_what_leaves_every_number_as_it_was_stands_apart(edit: tuple[str, str], 
 @pytest.mark.parametrize(
     ("edit", "name", "kind", "moves"),
     [
-        (("source: data sheet 2}\n  R_fo", "source: data sheet 2, tolerance: 5 %}\n  R_fo"), "givens/h_o/tolerance", "given", False),
-        (("coefficient: h_o,", "coefficient: 1500 W/(m^2 K),"), "resistances/outside film/coefficient", "term", True),
-        (("on: outside}\nacc", "on: outside, temperature: 30 degC}\nacc"), "resistances/outside film/temperature", "term", True),
-        (("kind: wall, conductivity: k", "kind: wall, resistance: 1.4e-4 m^2 K/W"), "resistances/wall", "term", True),
-        (("  - {name: outside deposit, kind: fouling, resistance: R_fo, on: outside}\n", ""), "resistances/outside deposit",
-         "removed", True),
+        (
+            ("source: data sheet 2}\n  R_fo", "source: data sheet 2, tolerance: 5 %}\n  R_fo"),
+            "givens/h_o/tolerance",
+            "given",
+            False,
+        ),
+        (
+            ("coefficient: h_o,", "coefficient: 1500 W/(m^2 K),"),
+            "resistances/outside film/coefficient",
+            "term",
+            True,
+        ),
+        (
+            ("on: outside}\nacc", "on: outside, temperature: 30 degC}\nacc"),
+            "resistances/outside film/temperature",
+            "term",
+            True,
+        ),
+        (
+            ("kind: wall, conductivity: k", "kind: wall, resistance: 1.4e-4 m^2 K/W"),
+            "resistances/wall",
+            "term",
+            True,
+        ),
+        (
+            ("  - {name: outside deposit, kind: fouling, resistance: R_fo, on: outside}\n", ""),
+            "resistances/outside deposit",
+            "removed",
+            True,
+        ),
         (("U on: outside", "U on: inside"), "report/U on", "report", True),
         (("units: SI", "units: US customary"), "report/units", "report", False),
         (("U_service >= 600 W", "U_service >= 500 W"), "acceptance/U_service >=", "criterion", False),
         (("inside diameter: d_i", "inside diameter: 14.83 mm"), "geometry/inside diameter", "geometry", True),
-        (("geometry: {", "cases: {cold: {h_o: {value: 900 W/(m^2 K), source: s}}}\ngeometry: {"), "cases/cold", "added", False),
-        (("geometry: {", "assumptions: {A1: {text: No tube is plugged., basis: none, verified: no}}\ngeometry: {"),
-         "assumptions/A1", "added", False),
-        (("geometry: {", "derived: {x: {relation: h_i/h_o, is: ratio}}\ngeometry: {"), "derived/x", "added", True),
+        (
+            ("geometry: {", "cases: {cold: {h_o: {value: 900 W/(m^2 K), source: s}}}\ngeometry: {"),
+            "cases/cold",
+            "added",
+            False,
+        ),
+        (
+            (
+                "geometry: {",
+                "assumptions: {A1: {text: No tube is plugged., basis: none, verified: no}}\ngeometry: {",
+            ),
+            "assumptions/A1",
+            "added",
+            False,
+        ),
+        (
+            ("geometry: {", "derived: {x: {relation: h_i/h_o, is: ratio}}\ngeometry: {"),
+            "derived/x",
+            "added",
+            True,
+        ),
     ],
 )
 def test_every_kind_of_change(edit: tuple[str, str], name: str, kind: str, moves: bool) -> None:
@@ -149,15 +215,23 @@ def test_every_kind_of_change(edit: tuple[str, str], name: str, kind: str, moves
     assert (change.id, change.kind, change.moves) == (name, kind, moves)
     mirrored = one(new, STATED)
     opposite = {"added": "removed", "removed": "added"}.get(kind, kind)
-    assert (mirrored.id, mirrored.kind, mirrored.was, mirrored.now) == (name, opposite, change.now, change.was)
+    assert (mirrored.id, mirrored.kind, mirrored.was, mirrored.now) == (
+        name,
+        opposite,
+        change.now,
+        change.was,
+    )
 
 
 def test_streams_fluids_methods_and_cases_of_an_example() -> None:
     old = example("wc-101")
-    new = old.replace("4 bara", "5 bara").replace("fluid: water", "fluid: {mixture: ethylene glycol + water, mass fraction: 30 %}")
+    new = old.replace("4 bara", "5 bara").replace(
+        "fluid: water", "fluid: {mixture: ethylene glycol + water, mass fraction: 30 %}"
+    )
     new = new.replace("situation: inside-tube}", "situation: inside-tube, method: gnielinski-1976}")
-    new = new.replace("T_cold: {value: 12 degC", "T_cold: {value: 11 degC").replace("verified: no}", "verified: {by: M. R., "
-                      "date: 2026-11-01, evidence: drawing 7}}")
+    new = new.replace("T_cold: {value: 12 degC", "T_cold: {value: 11 degC").replace(
+        "verified: no}", "verified: {by: M. R., date: 2026-11-01, evidence: drawing 7}}"
+    )
     found = changes_between(example_side(old), example_side(new))
     assert [(change.id, change.kind, change.moves) for change in found] == [
         ("assumptions/A1/verified", "assumption", False),
@@ -170,13 +244,22 @@ def test_streams_fluids_methods_and_cases_of_an_example() -> None:
 
 def test_a_fraction_of_a_mixture_is_a_figure_of_its_stream() -> None:
     old = example("gc-401").replace("mass fraction: w_eg", "mass fraction: 40 %")
-    (change,) = changes_between(example_side(old), example_side(old.replace("mass fraction: 40 %", "mass fraction: 35 %")))
-    assert (change.id, change.kind, change.was, change.now) == ("streams/brine/fluid/mass fraction", "stream", "40 %", "35 %")
+    (change,) = changes_between(
+        example_side(old), example_side(old.replace("mass fraction: 40 %", "mass fraction: 35 %"))
+    )
+    assert (change.id, change.kind, change.was, change.now) == (
+        "streams/brine/fluid/mass fraction",
+        "stream",
+        "40 %",
+        "35 %",
+    )
 
 
 def test_an_edited_branch_of_a_parallel_term_is_found_by_its_name() -> None:
     old = example("sl-301")
-    new = old.replace("emissivity: e_clad", "emissivity: {value: 0.3, source: insulation schedule LM-IS-301 note 3}")
+    new = old.replace(
+        "emissivity: e_clad", "emissivity: {value: 0.3, source: insulation schedule LM-IS-301 note 3}"
+    )
     (change,) = changes_between(example_side(old), example_side(new))
     assert change.id == "resistances/weather side/parallel/radiation/emissivity"
 
@@ -196,11 +279,15 @@ def test_another_order_of_terms_is_a_change() -> None:
 def test_a_changed_table_file_is_a_changed_fluid(tmp_path: Path) -> None:
     head = "T,density,viscosity,conductivity,heat capacity\ndegC,kg/m^3,Pa s,W/(m K),J/(kg K)\n"
     rows = "20,990,{viscosity},0.6,4180\n90,960,0.0003,0.67,4190\n"
-    text = STATED.replace("coefficient: h_i, on: inside}", "stream: hot, situation: inside-tube}").replace(
-        "coefficient: h_o, on: outside}", "coefficient: h_o, on: outside, temperature: 25 degC}").replace(
-        "geometry: {shape: tube,", "geometry: {shape: tube, length: 3 m,")
-    text += ("fluids: {oil: {table file: oil.csv, source: sheet 8}}\n"
-             "streams: {hot: {fluid: oil, phase: liquid, temperature: 60 degC, flow: 2 m/s}}\n")
+    text = (
+        STATED.replace("coefficient: h_i, on: inside}", "stream: hot, situation: inside-tube}")
+        .replace("coefficient: h_o, on: outside}", "coefficient: h_o, on: outside, temperature: 25 degC}")
+        .replace("geometry: {shape: tube,", "geometry: {shape: tube, length: 3 m,")
+    )
+    text += (
+        "fluids: {oil: {table file: oil.csv, source: sheet 8}}\n"
+        "streams: {hot: {fluid: oil, phase: liquid, temperature: 60 degC, flow: 2 m/s}}\n"
+    )
     sides: list[Side] = []
     for name, viscosity in (("one", "0.001"), ("two", "0.002")):
         folder = tmp_path / name
@@ -227,12 +314,15 @@ spread: {{within: 5 %, because: works certificate}}
 sources:
   - {{cite: Works certificate 7, for: table, standing: published}}
 check points:
-  - {{given: {{T_1: 293.15, T_2: 293.15}}, gives: {{k: {first}}}, within: 1e-9, source: works certificate, standing: published}}
-  - {{given: {{T_1: 373.15, T_2: 373.15}}, gives: {{k: 17}}, within: 1e-9, source: works certificate, standing: published}}
+  - {{given: {{T_1: 293.15, T_2: 293.15}}, gives: {{k: {first}}}, within: 1e-9,
+     source: works certificate, standing: published}}
+  - {{given: {{T_1: 373.15, T_2: 373.15}}, gives: {{k: 17}}, within: 1e-9,
+     source: works certificate, standing: published}}
 state: {{is: checked, since: 0.1}}
 """
-    text = STATED.replace("conductivity: k}", "material: house-alloy}").replace("on: inside}\n  - {name: inside dep",
-                                                                               "on: inside, temperature: 80 degC}\n  - {name: inside dep")
+    text = STATED.replace("conductivity: k}", "material: house-alloy}").replace(
+        "on: inside}\n  - {name: inside dep", "on: inside, temperature: 80 degC}\n  - {name: inside dep"
+    )
     text = text.replace("on: outside}\nacc", "on: outside, temperature: 30 degC}\nacc")
     sides = []
     for name, first in (("one", "15"), ("two", "14")):

@@ -1,4 +1,5 @@
-"""The comparison beside its attribution: verdicts, effects along the chain, checks, open items, pages and data."""
+"""The comparison beside its attribution: verdicts, effects along the chain, checks, open items, pages and
+data."""
 
 from __future__ import annotations
 
@@ -12,7 +13,13 @@ from markdown_it import MarkdownIt
 from calcbook.faults import Faults
 from calcbook.record import markdown
 from calcbook.record.blocks import Table
-from calcbook.revisions.comparison import Comparison, compare, comparison_blocks, comparison_data, short_blocks
+from calcbook.revisions.comparison import (
+    Comparison,
+    compare,
+    comparison_blocks,
+    comparison_data,
+    short_blocks,
+)
 from calcbook.revisions.comparison_page import relative_text
 from two_sides import STATED, example, example_side, side_of, with_value
 
@@ -27,7 +34,10 @@ def test_a_flipped_verdict_stands_first_with_the_figures_that_show_it() -> None:
     comparison = compare(side_of(STATED), side_of(FOULED))
     (flip,) = comparison.verdicts
     assert (flip.was, flip.now) == ("criterion met", "criterion not met")
-    assert (flip.figure_was, flip.figure_now) == ("673.91 against 600 W/(m²·K)", "587.46 against 600 W/(m²·K)")
+    assert (flip.figure_was, flip.figure_now) == (
+        "673.91 against 600 W/(m²·K)",
+        "587.46 against 600 W/(m²·K)",
+    )
     page = page_of(comparison)
     headings = re.findall(r"^## (.*)$", page, re.MULTILINE)
     assert headings[:3] == ["Verdicts that flipped", "What moved U", "Changed inputs"]
@@ -51,7 +61,13 @@ def test_a_criterion_that_came_has_no_state_before() -> None:
 def test_effects_along_the_chain_add_up_to_the_difference_of_the_resistances() -> None:
     comparison = compare(side_of(STATED), side_of(FOULED))
     service = [effect for effect in comparison.terms if effect.condition == "service"]
-    assert [effect.term for effect in service] == ["inside film", "inside deposit", "wall", "outside deposit", "outside film"]
+    assert [effect.term for effect in service] == [
+        "inside film",
+        "inside deposit",
+        "wall",
+        "outside deposit",
+        "outside film",
+    ]
     # The referred increment of the check values, all of it in the one term that changed.
     assert [f"{effect.difference:.4e}" for effect in service if effect.difference] == ["2.1837e-04"]
     assert math.fsum(effect.share for effect in service) == pytest.approx(1.0, rel=1e-12)
@@ -66,26 +82,34 @@ def test_interface_temperatures_and_cases_are_among_the_effects() -> None:
     names = {effect.name for effect in comparison.results}
     assert {"U_clean", "U_service", "cleanliness", "excess_surface", "T inside surface service"} <= names
     assert "T tube wall to shell-side deposit clean" in names
-    assert {(effect.case, effect.name) for effect in comparison.cases} == {("winter", "U_service"), ("winter", "U_clean")}
+    assert {(effect.case, effect.name) for effect in comparison.cases} == {
+        ("winter", "U_service"),
+        ("winter", "U_clean"),
+    }
     assert {effect.case for effect in comparison.margins} == {"", "winter"}
 
 
 def test_checks_that_changed_state_and_open_items() -> None:
     text = example("wc-101")
-    new = with_value(text, "m_hot", "0.9 kg/s").replace("verified: no", "verified: {by: M. R., date: 2026-11-01, evidence: x}")
+    new = with_value(text, "m_hot", "0.9 kg/s").replace(
+        "verified: no", "verified: {by: M. R., date: 2026-11-01, evidence: x}"
+    )
     new = new.replace("situation: inside-tube}", "situation: inside-tube, method: dittus-boelter-mcadams}")
     comparison = compare(example_side(text), example_side(new))
     assert "assumption A1" in {item.id for item in comparison.closed}
     flipped = {(item.what, item.was, item.now) for item in comparison.checks if not item.case}
     assert ("tube-side film / dittus-boelter-mcadams / turbulent", "not there", "outside") in flipped
-    assert any(item.id.startswith("tube-side film / dittus-boelter-mcadams / turbulent") for item in comparison.opened)
+    assert any(
+        item.id.startswith("tube-side film / dittus-boelter-mcadams / turbulent")
+        for item in comparison.opened
+    )
     page = page_of(comparison)
     assert "| closed | assumption | assumption A1 | Assumption A1 is not verified. |" in page
 
 
 def test_an_accepted_check_is_another_state() -> None:
     text = example("fw-601")
-    without = text[: text.index("accept:\n")] + text[text.index("report:"):]
+    without = text[: text.index("accept:\n")] + text[text.index("report:") :]
     comparison = compare(example_side(without), example_side(text))
     assert {(item.was, item.now) for item in comparison.checks} == {("outside", "accepted")}
     assert comparison.closed and not comparison.opened
@@ -105,8 +129,17 @@ def test_a_difference_from_zero_is_absolute() -> None:
     assert "| from zero |" in row and "+1.8e−4 m²·K/W" in row
 
 
-@pytest.mark.parametrize(("was", "now", "text"), [(2.0, 3.0, "+50.00 %"), (2.0, 1.0, "−50.00 %"), (0.0, 0.0, "0.00 %"),
-                                                  (0.0, 1.0, "from zero"), (-2.0, -1.0, "+50.00 %"), (1.0, 1.0, "0.00 %")])
+@pytest.mark.parametrize(
+    ("was", "now", "text"),
+    [
+        (2.0, 3.0, "+50.00 %"),
+        (2.0, 1.0, "−50.00 %"),
+        (0.0, 0.0, "0.00 %"),
+        (0.0, 1.0, "from zero"),
+        (-2.0, -1.0, "+50.00 %"),
+        (1.0, 1.0, "0.00 %"),
+    ],
+)
 def test_relative_changes(was: float, now: float, text: str) -> None:
     assert relative_text(was, now) == text
 
@@ -122,8 +155,11 @@ def test_the_line_for_hand_checking_can_be_worked() -> None:
 
 def test_us_customary_reports_are_compared_in_their_units() -> None:
     text = example("gc-401")
-    comparison = compare(example_side(text), example_side(with_value(text, "R_brine", "0.002 h ft^2 degF/Btu")),
-                         ("U_service", "T outside surface service"))
+    comparison = compare(
+        example_side(text),
+        example_side(with_value(text, "R_brine", "0.002 h ft^2 degF/Btu")),
+        ("U_service", "T outside surface service"),
+    )
     page = page_of(comparison)
     assert "Btu/(h·ft²·°F) U_service was" in page
     assert " °F             T outside surface service was" in page
@@ -133,7 +169,9 @@ def test_us_customary_reports_are_compared_in_their_units() -> None:
 def test_the_page_reads_the_same_in_a_markdown_reader() -> None:
     """Names and texts that would break a table or open a heading stay what they are."""
     nasty = "a | b ` c <b> # *d*"
-    new = STATED.replace("is: inside allowance", f'is: "{nasty}"').replace("name: wall,", 'name: "w|all `x`",')
+    new = STATED.replace("is: inside allowance", f'is: "{nasty}"').replace(
+        "name: wall,", 'name: "w|all `x`",'
+    )
     new = with_value(new, "R_fi", "3.5e-4 m^2 K/W")
     comparison = compare(side_of(STATED), side_of(new))
     page = page_of(comparison)
@@ -174,8 +212,12 @@ def test_a_result_that_one_side_does_not_have_is_a_fault() -> None:
 
 
 def test_sentences_of_others_stand_at_the_end() -> None:
-    comparison = compare(side_of(STATED), side_of(FOULED), signoffs=("checked by M. R.: void, R_fi changed",),
-                         feeds=("TK-2 takes U_service",))
+    comparison = compare(
+        side_of(STATED),
+        side_of(FOULED),
+        signoffs=("checked by M. R.: void, R_fi changed",),
+        feeds=("TK-2 takes U_service",),
+    )
     page = page_of(comparison)
     assert page.endswith("## Calculations that this one feeds\n\n- TK-2 takes U_service\n")
     assert "- checked by M. R.: void, R_fi changed" in page

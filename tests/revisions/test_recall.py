@@ -21,13 +21,16 @@ from two_sides import STATED, example, with_value
 def book(tmp_path: Path) -> Path:
     """Two calculation files, and two issued copies of the first."""
     (tmp_path / "cv-1.yaml").write_text(STATED, encoding="utf-8")
-    (tmp_path / "cv-2.yaml").write_text(STATED.replace("CV-1", "CV-2").replace("source: standard 3", "source: Survey 8"),
-                                        encoding="utf-8")
+    (tmp_path / "cv-2.yaml").write_text(
+        STATED.replace("CV-1", "CV-2").replace("source: standard 3", "source: Survey 8"), encoding="utf-8"
+    )
     for revision, supersedes in (("A", ""), ("B", "A")):
         folder = tmp_path / "output" / "CV-1" / "issued" / revision
         folder.mkdir(parents=True)
         text = with_value(STATED, "h_i", "4000 W/(m^2 K)") if revision == "A" else STATED
-        (folder / "calculation.yaml").write_text(text.replace("revision: A", f"revision: {revision}"), encoding="utf-8")
+        (folder / "calculation.yaml").write_text(
+            text.replace("revision: A", f"revision: {revision}"), encoding="utf-8"
+        )
         seal = Issued(folder, "CV-1", revision, "final", "2026-09-02", supersedes, "", {}, {}, {})
         (folder / "seal.json").write_text(seal_text(seal), encoding="utf-8")
     return tmp_path
@@ -46,7 +49,9 @@ def test_a_source_is_found_in_files_and_in_issued_copies(book: Path) -> None:
         ("CV-1", "B", "issued, final"),
     ]
     assert [(rest.where, rest.text, rest.source) for rest in found.found[0].rests] == [
-        ("givens/R_fo", "1.8e-4 m^2 K/W", "standard 3"), ("givens/R_fi", "1.8e-4 m^2 K/W", "standard 3")]
+        ("givens/R_fo", "1.8e-4 m^2 K/W", "standard 3"),
+        ("givens/R_fi", "1.8e-4 m^2 K/W", "standard 3"),
+    ]
     assert all(item.effect is None for item in found.found)
 
 
@@ -57,8 +62,10 @@ def test_a_replacement_shows_what_u_and_the_verdicts_would_be(book: Path) -> Non
     first = effects[0]
     assert first is not None
     # The check values of one raised allowance, see test_attribution.
-    assert (round(first.was.base.results["U_service"].value, 2), round(first.now.base.results["U_service"].value, 2)) == (
-        673.91, 587.46)
+    assert (
+        round(first.was.base.results["U_service"].value, 2),
+        round(first.now.base.results["U_service"].value, 2),
+    ) == (673.91, 587.46)
     assert [(flip.was, flip.now) for flip in first.verdicts] == [("criterion met", "criterion not met")]
     page = markdown(recall_blocks(found))
     assert "| 673.912 W/(m²·K) | 587.458 W/(m²·K) | −86.454 W/(m²·K) | −12.83 % |" in page
@@ -85,7 +92,11 @@ def test_the_limit_of_a_criterion_can_be_replaced(book: Path) -> None:
 
 
 def test_a_replacement_of_another_quantity_is_a_fault(book: Path) -> None:
-    for value, code in (("5 kg/s", "replacement-unfit"), ("5 parsec", "unit-unknown"), ("1,5 mm", "number-decimal-comma")):
+    for value, code in (
+        ("5 kg/s", "replacement-unfit"),
+        ("5 parsec", "unit-unknown"),
+        ("1,5 mm", "number-decimal-comma"),
+    ):
         with pytest.raises(Faults) as caught:
             looked(book, Wanted(source="standard 3", value=value))
         assert [fault.code for fault in caught.value.faults] == [code]
@@ -98,7 +109,9 @@ def test_a_card_is_found_and_its_wrong_figure_replaced(tmp_path: Path) -> None:
     (item,) = found.found
     assert item.side.calculation.number == "FW-601" and item.rests[0].where == "method card"
     assert item.effect is not None
-    was, now = (solved.base.results["h sample film service"].value for solved in (item.effect.was, item.effect.now))
+    was, now = (
+        solved.base.results["h sample film service"].value for solved in (item.effect.was, item.effect.now)
+    )
     # Ten per cent on the constant is ten per cent on h: the method does not close on the surface.
     assert now / was == pytest.approx(1.1, rel=1e-9)
     both = looked(tmp_path, Wanted(card="stainless-316-kaschnitz-2017", value="14.3=15.0"))
@@ -134,6 +147,13 @@ def test_the_command(book: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     done = run(main, ["recall", ".", "--source", "standard 3", "--value", "3.5e-4 m^2 K/W", "--only", "R_fi"])
     assert done.exit_code == 0 and done.output.startswith("# Recall of the source “standard 3”")
     assert "3 calculations and issued records rest on it, of 4 looked at." in done.output
-    for arguments in ([], ["--source", "x", "--card", "y"], ["--source", " "], ["--source", "standard 3", "--value", "1 kg"]):
+    for arguments in (
+        [],
+        ["--source", "x", "--card", "y"],
+        ["--source", " "],
+        ["--source", "standard 3", "--value", "1 kg"],
+    ):
         assert run(main, ["recall", ".", *arguments]).exit_code == 2
-    assert json.loads(run(main, ["recall", ".", "--source", "nobody", "--format", "json"]).output)["found"] == []
+    assert (
+        json.loads(run(main, ["recall", ".", "--source", "nobody", "--format", "json"]).output)["found"] == []
+    )

@@ -27,9 +27,21 @@ NUMBER = "CV-1"
 
 def git(folder: Path, *arguments: str) -> str:
     """Git with a person of its own and no settings of this machine."""
-    person = ("-c", "user.name=K. L.", "-c", "user.email=kl@example.org", "-c", "commit.gpgsign=false",
-              "-c", "core.autocrlf=false", "-c", "init.defaultBranch=main")
-    finished = subprocess.run(["git", *person, "-C", str(folder), *arguments], capture_output=True, text=True, check=True)
+    person = (
+        "-c",
+        "user.name=K. L.",
+        "-c",
+        "user.email=kl@example.org",
+        "-c",
+        "commit.gpgsign=false",
+        "-c",
+        "core.autocrlf=false",
+        "-c",
+        "init.defaultBranch=main",
+    )
+    finished = subprocess.run(
+        ["git", *person, "-C", str(folder), *arguments], capture_output=True, text=True, check=True
+    )
     return finished.stdout.strip()
 
 
@@ -39,20 +51,29 @@ def repository(tmp_path: Path) -> Path:
     folder = tmp_path / "repository"
     (folder / "calcs").mkdir(parents=True)
     git(folder, "init", "-q")
-    (folder / "calcs" / "book.yaml").write_text((EXAMPLES / "book.yaml").read_text(encoding="utf-8"), encoding="utf-8")
-    for text, message in ((STATED, "revision A"), (with_value(STATED, "R_fi", "3.5e-4 m^2 K/W"), "inspection"),
-                          (with_value(STATED, "R_fi", "4e-4 m^2 K/W"), "second inspection")):
+    (folder / "calcs" / "book.yaml").write_text(
+        (EXAMPLES / "book.yaml").read_text(encoding="utf-8"), encoding="utf-8"
+    )
+    for text, message in (
+        (STATED, "revision A"),
+        (with_value(STATED, "R_fi", "3.5e-4 m^2 K/W"), "inspection"),
+        (with_value(STATED, "R_fi", "4e-4 m^2 K/W"), "second inspection"),
+    ):
         (folder / "calcs" / "cv-1.yaml").write_text(text, encoding="utf-8")
         git(folder, "add", "-A")
         git(folder, "commit", "-q", "-m", message)
     return folder
 
 
-def issue(output: Path, text: str, revision: str, supersedes: str = "", recorded: dict[str, float] | None = None) -> None:
+def issue(
+    output: Path, text: str, revision: str, supersedes: str = "", recorded: dict[str, float] | None = None
+) -> None:
     """An issued copy, with other recorded results where they are given."""
     folder = output / NUMBER / "issued" / revision
     folder.mkdir(parents=True)
-    (folder / "calculation.yaml").write_text(text.replace("revision: A", f"revision: {revision}"), encoding="utf-8")
+    (folder / "calculation.yaml").write_text(
+        text.replace("revision: A", f"revision: {revision}"), encoding="utf-8"
+    )
     solved = solve_file(folder / "calculation.yaml")
     digest = digest_of(solved)
     results = json.loads(results_text(solved, digest, software_of(digest)))
@@ -68,30 +89,42 @@ def issue(output: Path, text: str, revision: str, supersedes: str = "", recorded
 
 
 def test_revisions_are_compared_from_git(repository: Path) -> None:
-    comparison, _ = compare_texts(("git:HEAD~2:calcs/cv-1.yaml", "git:HEAD~1:calcs/cv-1.yaml"), repository, None, ["U_service"])
+    comparison, _ = compare_texts(
+        ("git:HEAD~2:calcs/cv-1.yaml", "git:HEAD~1:calcs/cv-1.yaml"), repository, None, ["U_service"]
+    )
     assert [change.id for change in comparison.changes] == ["givens/R_fi"]
     # The check value of one raised allowance, see test_attribution.
     assert round(comparison.attributions[0].now, 2) == 587.46
-    assert comparison.new.calculation.settings.name.startswith("Larkmoor"), "the book settings of that revision"
+    assert comparison.new.calculation.settings.name.startswith("Larkmoor"), (
+        "the book settings of that revision"
+    )
 
 
 def test_a_file_on_disk_is_compared_with_git(repository: Path) -> None:
     old = load_side("git:HEAD~2:calcs/cv-1.yaml", repository, repository / "output")
     new = load_side("calcs/cv-1.yaml", repository, repository / "output")
-    assert [(change.was, change.now) for change in compare(old, new).changes] == [("1.8e-4 m^2 K/W", "4e-4 m^2 K/W")]
+    assert [(change.was, change.now) for change in compare(old, new).changes] == [
+        ("1.8e-4 m^2 K/W", "4e-4 m^2 K/W")
+    ]
 
 
 def test_the_working_folder_may_be_any_folder_of_the_repository(repository: Path) -> None:
     inside = load_side("git:HEAD~1:cv-1.yaml", repository / "calcs", repository / "output")
-    above = load_side(f"git:HEAD~1:{repository.name}/calcs/cv-1.yaml", repository.parent, repository / "output")
+    above = load_side(
+        f"git:HEAD~1:{repository.name}/calcs/cv-1.yaml", repository.parent, repository / "output"
+    )
     assert inside.digest == above.digest
 
 
 def test_book_settings_of_the_git_revision_are_used(repository: Path) -> None:
     book = repository / "calcs" / "book.yaml"
     book.write_text(book.read_text(encoding="utf-8").replace("101.3 kPa", "95 kPa"), encoding="utf-8")
-    comparison, _ = compare_texts(("git:HEAD:calcs/cv-1.yaml", "calcs/cv-1.yaml"), repository, None, ["U_service"])
-    assert [(change.id, change.kind) for change in comparison.changes] == [("book/site pressure", "book setting")]
+    comparison, _ = compare_texts(
+        ("git:HEAD:calcs/cv-1.yaml", "calcs/cv-1.yaml"), repository, None, ["U_service"]
+    )
+    assert [(change.id, change.kind) for change in comparison.changes] == [
+        ("book/site pressure", "book setting")
+    ]
 
 
 def test_a_shallow_clone_compares_as_far_as_its_history_reaches(repository: Path, tmp_path: Path) -> None:
@@ -106,13 +139,17 @@ def test_a_shallow_clone_compares_as_far_as_its_history_reaches(repository: Path
     assert caught.value.faults[0].code == "git-revision-unknown"
     assert "shallow" in caught.value.faults[0].expected
     git(clone, "fetch", "-q", "--depth", "3")
-    comparison, _ = compare_texts(("git:origin/HEAD~2:calcs/cv-1.yaml", "calcs/cv-1.yaml"), clone, None, ["U_service"])
+    comparison, _ = compare_texts(
+        ("git:origin/HEAD~2:calcs/cv-1.yaml", "calcs/cv-1.yaml"), clone, None, ["U_service"]
+    )
     assert [change.id for change in comparison.changes] == ["givens/R_fi"]
     since = compare_since(clone, "origin/HEAD~1", ["U_service"])
     assert [item.new.calculation.number for item in since.compared] == [NUMBER]
 
 
-@pytest.mark.parametrize("revision", ["--output=x", "-h", "no such", "HEAD:x", "", "main..HEAD", "nowhere", "HEAD^{tree}"])
+@pytest.mark.parametrize(
+    "revision", ["--output=x", "-h", "no such", "HEAD:x", "", "main..HEAD", "nowhere", "HEAD^{tree}"]
+)
 def test_what_is_no_revision_is_a_fault(repository: Path, revision: str) -> None:
     with pytest.raises(Faults) as caught:
         commit_of(repository, revision)
@@ -120,8 +157,12 @@ def test_what_is_no_revision_is_a_fault(repository: Path, revision: str) -> None
 
 
 def test_faults_of_sides(repository: Path, tmp_path: Path) -> None:
-    cases = {"git:HEAD:calcs/none.yaml": "git-file-unknown", "git:HEAD": "side-unreadable", "CV-1@Q": "issued-not-found",
-             "calcs/none.yaml": "file-not-found"}
+    cases = {
+        "git:HEAD:calcs/none.yaml": "git-file-unknown",
+        "git:HEAD": "side-unreadable",
+        "CV-1@Q": "issued-not-found",
+        "calcs/none.yaml": "file-not-found",
+    }
     for text, code in cases.items():
         with pytest.raises(Faults) as caught:
             load_side(text, repository, repository / "output")
@@ -154,7 +195,9 @@ def test_since_tells_changed_new_gone_moved_and_broken_files(repository: Path) -
     (calcs / "second.yaml").unlink()
     (calcs / "fresh.yaml").write_text(STATED.replace("CV-1", "CV-4"), encoding="utf-8")
     (calcs / "third.yaml").write_text("# a remark\n" + STATED.replace("CV-1", "CV-3"), encoding="utf-8")
-    (calcs / "broken.yaml").write_text(STATED.replace("CV-1", "CV-5").replace("14.83 mm", "14,83 mm"), encoding="utf-8")
+    (calcs / "broken.yaml").write_text(
+        STATED.replace("CV-1", "CV-5").replace("14.83 mm", "14,83 mm"), encoding="utf-8"
+    )
     since = compare_since(repository, "HEAD", ["U_service"])
     assert [item.new.calculation.number for item in since.compared] == ["CV-1"]
     assert [change.id for change in since.compared[0].changes] == ["givens/h_o"]
@@ -194,7 +237,9 @@ def test_new_alone_is_compared_with_the_last_issued_revision_before_it(tmp_path:
     # A file whose own revision is issued is compared with the one that its copy supersedes.
     (tmp_path / "cv-1.yaml").write_text(text.replace("revision: C", "revision: B"), encoding="utf-8")
     assert compare_texts(("cv-1.yaml",), tmp_path, output, ["U_service"])[0].old.revision == "A"
-    assert compare_texts((f"{NUMBER}@A", f"{NUMBER}@B"), tmp_path, output, ["U_service"])[0].new.revision == "B"
+    assert (
+        compare_texts((f"{NUMBER}@A", f"{NUMBER}@B"), tmp_path, output, ["U_service"])[0].new.revision == "B"
+    )
 
 
 def test_the_part_of_the_software_stands_apart_from_that_of_the_inputs(tmp_path: Path) -> None:
@@ -233,20 +278,67 @@ def test_results_of_other_content_are_not_taken_for_those_of_this_file(tmp_path:
 
 def test_the_command_prints_and_writes_the_page(repository: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.chdir(repository)
-    run = CliRunner().invoke(main, ["compare", "git:HEAD~2:calcs/cv-1.yaml", "calcs/cv-1.yaml", "--result", "U_clean"])
+    run = CliRunner().invoke(
+        main, ["compare", "git:HEAD~2:calcs/cv-1.yaml", "calcs/cv-1.yaml", "--result", "U_clean"]
+    )
     assert run.exit_code == 0, run.output
     assert run.output == (repository / "output" / NUMBER / "comparison.md").read_text(encoding="utf-8")
     assert str(repository) not in run.output
-    again = CliRunner().invoke(main, ["compare", "git:HEAD~2:calcs/cv-1.yaml", "calcs/cv-1.yaml", "--format", "json"])
+    again = CliRunner().invoke(
+        main, ["compare", "git:HEAD~2:calcs/cv-1.yaml", "calcs/cv-1.yaml", "--format", "json"]
+    )
     assert json.loads(again.output)["attributions"][0]["result"] == "U_service"
 
 
 def test_exit_codes_of_the_command(repository: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.chdir(repository)
     run = CliRunner().invoke
-    for arguments, code in (([], 2), (["a", "b", "c"], 2), (["calcs/cv-1.yaml", "--since", "HEAD"], 2),
-                            (["calcs/cv-1.yaml"], 2), (["--since", "HEAD"], 0), (["--since", "HEAD~1"], 0),
-                            (["calcs/cv-1.yaml", "calcs/cv-1.yaml", "--result", "U"], 2)):
+    for arguments, code in (
+        ([], 2),
+        (["a", "b", "c"], 2),
+        (["calcs/cv-1.yaml", "--since", "HEAD"], 2),
+        (["calcs/cv-1.yaml"], 2),
+        (["--since", "HEAD"], 0),
+        (["--since", "HEAD~1"], 0),
+        (["calcs/cv-1.yaml", "calcs/cv-1.yaml", "--result", "U"], 2),
+    ):
         assert run(main, ["compare", *arguments]).exit_code == code, arguments
     (repository / "calcs" / "broken.yaml").write_text("calculation: {number: X-1}\n", encoding="utf-8")
     assert run(main, ["compare", "--since", "HEAD"]).exit_code == 2
+
+
+# --- links ----------------------------------------------------------------------------------------------
+
+TAKER = STATED.replace("CV-1", "TK-2").replace(
+    "h_o:  {value: 1500 W/(m^2 K), is: outside film coefficient, source: data sheet 2}",
+    "h_o:  {is: outside film coefficient, from: {calculation: CV-1, result: U_service}}",
+)
+
+
+def test_a_given_taken_from_another_calculation_changes_with_its_source(repository: Path) -> None:
+    """In git the source stands beside the file as it stood then."""
+    calcs = repository / "calcs"
+    (calcs / "tk-2.yaml").write_text(TAKER, encoding="utf-8")
+    git(repository, "add", "-A")
+    git(repository, "commit", "-q", "-m", "a calculation that is fed")
+    source = calcs / "cv-1.yaml"
+    source.write_text(
+        with_value(source.read_text(encoding="utf-8"), "R_fi", "1e-4 m^2 K/W"), encoding="utf-8"
+    )
+    comparison, _ = compare_texts(
+        ("git:HEAD:calcs/tk-2.yaml", "calcs/tk-2.yaml"), repository, None, ["U_service"]
+    )
+    (change,) = comparison.changes
+    assert change.id == "givens/h_o" and change.moves
+    assert change.quantity_was is not None and change.quantity_now is not None
+    assert change.quantity_was.value < change.quantity_now.value
+    (attribution,) = comparison.attributions
+    assert attribution.difference > 0.0 and abs(attribution.rest) <= 1e-9 * attribution.was
+
+
+def test_a_comparison_names_what_the_calculation_feeds(repository: Path) -> None:
+    (repository / "calcs" / "tk-2.yaml").write_text(TAKER, encoding="utf-8")
+    comparison, _ = compare_texts(
+        ("git:HEAD~1:calcs/cv-1.yaml", "calcs/cv-1.yaml"), repository, None, ["U_service"]
+    )
+    assert comparison.feeds == ("TK-2: h_o is U_service of the file as it stands",)

@@ -14,7 +14,8 @@ EXAMPLES = Path(__file__).resolve().parents[2] / "calcs"
 # The check values' calculation: everything stated, so that U can be made by hand.
 STATED = """\
 calculation:
-  {number: CV-1, title: Stated coefficients, plant: Larkmoor Works, revision: A, prepared by: K. L., date: 2026-09-02}
+  {number: CV-1, title: Stated coefficients, plant: Larkmoor Works, revision: A, prepared by: K. L.,
+   date: 2026-09-02}
 purpose: Compare two revisions by hand.
 givens:
   d_o:  {value: 19.05 mm, is: tube outside diameter, source: drawing 1}
