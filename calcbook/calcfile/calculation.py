@@ -265,4 +265,9 @@ class Calculation:
     settings: Settings
     meaning: object
     place: Place
+
+    @property
+    def places(self) -> tuple[str, ...]:
+        """The cases that are places along the unit."""
+        return tuple(name for name in self.cases if name.startswith("at "))
     broken: frozenset[str] = frozenset()

@@ -385,7 +385,12 @@ FILE = Description(
         Key("accept", "answers to failed checks", "list", of=ACCEPT),
         Key("duty", "duty of the unit", "node", later=True),
         Key("sweep", "sweep over givens", "node", later=True),
-        Key("evaluate at", "places along the unit", "node", later=True),
+        Key(
+            "evaluate at",
+            "named places along the unit, each with the givens that differ there",
+            "mapping",
+            of=Description("places", "", free=Key("<place>", "name of a place", "mapping")),
+        ),
         Key("survey", "plant data", "node", later=True),
     ),
 )

@@ -51,6 +51,7 @@ SYMBOL = re.compile(r"[A-Za-z][A-Za-z0-9_]{0,39}")
 # What other ids of the chain start with: a term of that name would be taken for them.
 CLASHING_NAMES = frozenset(["given", "derived", "geometry", "circuit", "solution", "book"])
 CLASHING_STARTS = ("stream ", "case ", "fluid ", "assumption ", "word ", "unread ")
+AT_PLACE = "at "
 CASE_WORDS = ("all", "base", "clean", "service")
 RESERVED = frozenset(
     [
@@ -1059,8 +1060,16 @@ class _Reader:
         return node.text
 
     def cases(self, givens: Mapping[str, Given]) -> dict[str, dict[str, Given]]:
+        """Named variations of the givens; a place along the unit is a case called `at <place>`."""
+        places = self.restatements("evaluate at", givens)
+        return {
+            **self.restatements("cases", givens),
+            **{f"{AT_PLACE}{name}": changes for name, changes in places.items()},
+        }
+
+    def restatements(self, section: str, givens: Mapping[str, Given]) -> dict[str, dict[str, Given]]:
         result: dict[str, dict[str, Given]] = {}
-        for key, node in self.entries("cases"):
+        for key, node in self.entries(section):
             if not re.fullmatch(r"[A-Za-z0-9][A-Za-z0-9 _.-]{0,39}", key.text) or key.text in CASE_WORDS:
                 self.collector.add(
                     "name-not-allowed",

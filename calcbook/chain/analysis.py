@@ -4,12 +4,15 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
+from dataclasses import replace
 
 import numpy as np
 
+from calcbook.chain.build import follows_temperature
 from calcbook.chain.checks import apply_acceptances, evaluate_check
 from calcbook.chain.circuit import branch_coefficient
-from calcbook.chain.findings import assumptions_of, jump_items, stream_findings, wall_checks
+from calcbook.chain.findings import assumptions_of, celsius, jump_items, stream_findings, wall_checks
+from calcbook.chain.fluids import PropertyOperation
 from calcbook.chain.outcome import (
     BranchRow,
     CaseOutcome,
@@ -33,6 +36,7 @@ from calcbook.library import vocabulary
 from calcbook.quantities import QuantityFault, as_kind
 
 CONTROLLING_SHARE = 0.5
+PLACES_SPREAD = 0.2
 OPPOSITE = {">=": 1.0, ">": 1.0, "<=": -1.0, "<": -1.0}
 
 
@@ -75,9 +79,11 @@ class _Analysis:
         cases = self._with_acceptances(cases)
         if self.collector:
             return None
+        if self.chain.calculation.places:
+            cases[0] = _with_mean(cases, self.chain.calculation.places)
         cross = self._cross(cases[0])
         return Solved(self.chain, tuple(cases), cross, self._sensitivity(cases[0]), self.used_cards,
-                      _governing(cases))
+                      _governing(cases, self.chain.calculation.places))
 
     # -- one case -----------------------------------------------------------------------------------
 
@@ -87,6 +93,7 @@ class _Analysis:
         for condition, solution in solutions.items():
             if not bool(np.all(solution.converged)) or not np.isfinite(solution.number(self.chain.results["U"])):
                 self._stop_if_limit(name, solution)
+                self._explain(name, solution)
                 if self.collector:
                     return None
                 raise NotConverged(self.chain.calculation.number, name, condition)
@@ -122,6 +129,27 @@ class _Analysis:
             result = evaluate_check(check, solution, name, self.dimensions)
             if result.level == "stop" and result.state == "outside":
                 self._report_stop(result)
+
+    def _explain(self, name: str, solution: Solution) -> None:
+        """A property that ends before the other side's temperature is why a surface could not be found."""
+        if not self.chain.has_temperatures:
+            return
+        for group, other in ((self.chain.inner, self.chain.outer), (self.chain.outer, self.chain.inner)):
+            for branch in group.branches:
+                for step in chosen(branch, solution).steps:
+                    operation = step.operation
+                    if not isinstance(operation, PropertyOperation) or not operation.keeps_phase:
+                        continue
+                    at = dict(solution.values) | {step.inputs["T"]: np.asarray(solution.number(other.bulk))}
+                    value = operation.value({local: at[bound] for local, bound in step.inputs.items()})
+                    if not np.isfinite(value).all():
+                        where = f"case {name}: " if name else ""
+                        bulk = celsius(solution.number(other.bulk))
+                        self.collector.add("outside-fluid-range", self.chain.streams[branch.stream].place,
+                                           f"{where}the surface of {branch.name} may come as near to the other side as"
+                                           f" {bulk}, where {branch.stream} has no {operation.property}",
+                                           expected="a fluid or table that reaches the other side's temperature")
+                        return
 
     def _report_stop(self, check: CheckResult) -> None:
         term = next((term for term in self.chain.calculation.resistances if term.name == check.owner), None)
@@ -374,8 +402,6 @@ class _Analysis:
 
     def _with_acceptances(self, cases: list[CaseOutcome]) -> list[CaseOutcome]:
         """Apply the file's acceptances over all cases at once, then add the open items that remain."""
-        from dataclasses import replace
-
         every = tuple(check for case in cases for check in case.checks)
         settled = apply_acceptances(self.chain, every, self.collector)
         result, start = [], 0
@@ -408,6 +434,9 @@ class _Analysis:
 
     def _cross_row(self, branch: Branch, used: Candidate, other: Candidate, inputs: Mapping[str, np.ndarray],
                    reference: float) -> CrossRow:
+        if not self.chain.has_temperatures and needs_temperatures(self.chain, branch, other):
+            return CrossRow(branch.name, other.method.id, other.method.title, other.method.family, False, math.nan, math.nan,
+                            math.nan, "it needs the temperature of the surface, and one bulk temperature is not stated")
         solution = solve(self.chain, inputs, SERVICE, {branch.name: other})
         same = other.method.family == used.method.family
         reason = ""
@@ -483,6 +512,12 @@ def chosen(branch: Branch, solution: Solution) -> Candidate:
     return branch.candidates[int(np.asarray(place).ravel()[0]) if place is not None else 0]
 
 
+def needs_temperatures(chain: Chain, branch: Branch, candidate: Candidate) -> bool:
+    """Whether a candidate put in place of a film's own follows the temperature of the surface."""
+    group = next(group for group in (chain.inner, chain.outer) if branch in group.branches)
+    return follows_temperature(group, {branch.name: candidate})
+
+
 def _dimensions(chain: Chain) -> dict[str, tuple]:
     """The dimension of every figure of a chain by id."""
     return dict(chain.dimensions)
@@ -551,8 +586,32 @@ def _open_checks(checks: tuple[CheckResult, ...]) -> list[OpenItem]:
     return list(items.values())
 
 
-def _governing(cases: list[CaseOutcome]) -> str:
-    """The case with the smallest margin of the first criterion, else with the lowest U in service."""
+def _with_mean(cases: list[CaseOutcome], places: tuple[str, ...]) -> CaseOutcome:
+    """The base case with the mean of U over the places along the unit, and an open item where they differ much."""
+    at = {case.name: case for case in cases if case.name in places}
+    base = cases[0]
+    results = dict(base.results)
+    items = list(base.open_items)
+    for condition in reversed(CONDITIONS):
+        values = [case.results[f"U_{condition}"].value for case in at.values()]
+        mean = sum(values) / len(values)
+        results[f"U_{condition} mean of places"] = Result(
+            f"U_{condition} mean of places", mean, base.results[f"U_{condition}"].kind,
+            f"arithmetic mean of U {condition} over {', '.join(at)}")
+        spread = (max(values) - min(values)) / mean
+        if spread > PLACES_SPREAD:
+            items.append(OpenItem(f"places / {condition}", "check", f"U {condition} differs by {100.0 * spread:.0f} % over"
+                                  f" the places {', '.join(at)}, more than {100.0 * PLACES_SPREAD:.0f} %: one U does not"
+                                  " stand for the whole unit."))
+    return replace(base, results=results, open_items=tuple(items))
+
+
+def _governing(cases: list[CaseOutcome], places: tuple[str, ...] = ()) -> str:
+    """The case with the smallest margin of the first criterion, else with the lowest U in service.
+
+    A place along the unit is no case of its own.
+    """
+    cases = [case for case in cases if case.name not in places]
     if len(cases) == 1:
         return ""
     if all(case.criteria for case in cases):

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import replace
 
 from calcbook.calcfile import Calculation
@@ -67,6 +68,7 @@ class _Builder:
             self._mark_unused()
             return None
         shape, self.finned = lay_out_fins(scope, terms, shape)
+        self.checks += shape.checks
         self.early = frozenset(scope.steps)
         elements = self._elements(terms, shape)
         basis = shape.surface_named(scope, calculation.report.u_on, calculation.report.u_on_place) \
@@ -281,9 +283,8 @@ class _Builder:
         conductivity, table = self._conductivity(finned.term, first, second)
         if not conductivity:
             return None
-        follows = follows_temperature(group)
         layer = lay_out_fins_layer(self.scope, self.library, finned, shape, group, fouling, conductivity,
-                                   (first, second) if table is not None else ("", ""), follows)
+                                   (first, second) if table is not None else ("", ""))
         if layer is None or table is None:
             return layer
         self.scope.assume(f"{finned.name}/conductivity", "The fins have one conductivity: the mean of their card between the root"
@@ -694,10 +695,13 @@ STATED = Method(
 )
 
 
-def follows_temperature(element: Element) -> bool:
-    """Whether an element's resistance depends on its own temperatures or flux."""
+def follows_temperature(element: Element, forced: Mapping[str, Candidate] | None = None) -> bool:
+    """Whether an element's resistance depends on its own temperatures or flux.
+
+    ``forced`` holds candidates that stand in place of a film's own. Fins follow their film besides.
+    """
     if isinstance(element, Layer):
-        return bool(element.first_temperature) or element.follows_film
+        return bool(element.first_temperature)
     if any(branch.reference != element.bulk for branch in element.branches):
         return True
     moving = {element.surface_temperature, element.flux}
@@ -706,7 +710,7 @@ def follows_temperature(element: Element) -> bool:
     return any(
         bound in moving
         for branch in element.branches
-        for candidate in branch.candidates
+        for candidate in ((forced[branch.name],) if forced and branch.name in forced else branch.candidates)
         for step in (*candidate.steps, *branch.choice_steps)
         for bound in step.inputs.values()
     )

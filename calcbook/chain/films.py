@@ -594,6 +594,7 @@ class FilmScope:
             if method in laid_out:
                 continue
             kept = (self.scope.collector, self.scope.assumptions, self.scope.used_in, self.missing)
+            before = dict(self.scope.steps)
             self.scope.collector, self.missing = Collector(), set()
             self.scope.assumptions, self.scope.used_in = dict(kept[1]), {}
             candidate = self.candidate(method, "cross-check")
@@ -602,6 +603,9 @@ class FilmScope:
             if candidate is not None and not reasons:
                 found.append(candidate)
             else:
+                # What it had begun to lay out leads nowhere: the chain holds only steps that something uses.
+                self.scope.steps.clear()
+                self.scope.steps.update(before)
                 unusable[method] = "; ".join(reasons)
         return tuple(found), unusable
 

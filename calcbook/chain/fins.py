@@ -175,11 +175,10 @@ class _Areas:
 
 
 def lay_out_fins_layer(scope: Scope, library: Library, finned: FinnedSide, shape: Shape, group: Group,
-                       fouling: Sequence[Layer], conductivity: str, temperatures: tuple[str, str], follows_film: bool
-                       ) -> Layer | None:
+                       fouling: Sequence[Layer], conductivity: str, temperatures: tuple[str, str]) -> Layer | None:
     """The fins as a term in series with their film; ``conductivity`` is the id of k, ``temperatures`` those it
     is the mean between (empty where it is stated). None after a fault."""
-    return _Series(scope, library, finned, shape, group).layer(fouling, conductivity, temperatures, follows_film)
+    return _Series(scope, library, finned, shape, group).layer(fouling, conductivity, temperatures)
 
 
 @dataclass(frozen=True)
@@ -190,7 +189,7 @@ class _Series:
     shape: Shape
     group: Group
 
-    def layer(self, fouling: Sequence[Layer], conductivity: str, temperatures: tuple[str, str], follows_film: bool) -> Layer | None:
+    def layer(self, fouling: Sequence[Layer], conductivity: str, temperatures: tuple[str, str]) -> Layer | None:
         method = self._method()
         if not method:
             return None
@@ -209,8 +208,7 @@ class _Series:
         checks = (*single[1], *overall[1], *self._own_checks())
         steps = self._own_steps([resistance, *(bound for check in checks for bound in check.inputs.values())])
         first, second = temperatures
-        return Layer(name, "fins", surface, resistance, steps, first, second, method, checks, self.group.name, follows_film,
-                     efficiency)
+        return Layer(name, "fins", surface, resistance, steps, first, second, method, checks, self.group.name, efficiency)
 
     def _method(self) -> str:
         """The method of the fin efficiency: the file's, or the exact one of the shape, said in the record."""

@@ -176,7 +176,12 @@ class Engine:
         self.values[SERVICE_FLAG] = np.asarray(float(condition != CLEAN))
         self.values.update(inputs)
         # Fins follow the coefficient of their film: outside they are closed after it, though they stand before it.
-        moving = [element for element in chain.elements if follows_temperature(element)]
+        follows = {element.name for element in chain.elements if follows_temperature(element, forced)}
+        moving = [
+            element
+            for element in chain.elements
+            if element.name in follows or (isinstance(element, Layer) and element.film in follows)
+        ]
         self.moving = sorted(moving, key=lambda element: _is_outer_fins(chain, element))
         # The number of a moving element; elements themselves are compared by all they hold, which takes long.
         self.numbers = {element.name: number for number, element in enumerate(self.moving)}

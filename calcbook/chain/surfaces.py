@@ -6,10 +6,11 @@ from dataclasses import dataclass
 
 from calcbook.calcfile.calculation import Geometry, Term
 from calcbook.chain.scope import Scope
-from calcbook.chain.types import Surface
+from calcbook.chain.types import ChainCheck, Surface
 from calcbook.faults import nearest_names, shown
 from calcbook.formulas import parse_expression
 from calcbook.library import vocabulary
+from calcbook.library.cards import Limit
 
 
 @dataclass(frozen=True, slots=True)
@@ -35,6 +36,7 @@ class Shape:
     per_metre: bool
     finned_side: str = ""
     fins_failed: bool = False
+    checks: tuple[ChainCheck, ...] = ()
 
     @property
     def outermost(self) -> int:
@@ -181,7 +183,8 @@ def _round(scope: Scope, geometry: Geometry, walls: tuple[Term, ...], thicknesse
             dimensions["tube passes"] = values["passes"]
         if not per_metre:
             dimensions |= {"length": heated, "tube length": length}
-    return Shape(geometry.shape, surfaces, laid, dimensions, per_metre)
+    checks = _bundle_checks(scope, geometry, values, tubes, length)
+    return Shape(geometry.shape, surfaces, laid, dimensions, per_metre, checks=checks)
 
 
 def _bore(scope: Scope, geometry: Geometry, walls: tuple[Term, ...], thicknesses: list[str],
@@ -224,6 +227,7 @@ def _heated_length(scope: Scope, values: dict[str, str], length: str) -> str:
 def _open_tubes(scope: Scope, geometry: Geometry, values: dict[str, str]) -> str:
     """The id of the tubes of a bundle that are not plugged; empty where no bundle is stated."""
     tubes, plugged = values.get("tubes", ""), values.get("plugged", "")
+    _refuse_parts_of_tubes(scope, geometry)
     for key in ("passes", "plugged"):
         if key in geometry.dimensions and "tubes" not in geometry.dimensions and "parallel" not in geometry.dimensions:
             scope.collector.add("key-missing", geometry.dimensions[key].place, f"`{key}` belongs to a bundle: `tubes` is missing",
@@ -234,6 +238,34 @@ def _open_tubes(scope: Scope, geometry: Geometry, values: dict[str, str]) -> str
     return scope.relation_step("geometry/open tubes", "N_open", "tubes that are not plugged", "geometry",
                                parse_expression("N_all - N_plug"), {"N_all": tubes, "N_plug": plugged}, "bundle",
                                "open tubes")
+
+
+def _refuse_parts_of_tubes(scope: Scope, geometry: Geometry) -> None:
+    """Tubes, passes and plugged tubes are counted: a fault where a figure is no whole number."""
+    for key in ("tubes", "passes", "plugged"):
+        value = geometry.dimensions.get(key)
+        given = scope.calculation.givens.get(value.symbol) if value is not None else None
+        held = given.value if given is not None else value
+        if held is not None and held.quantity is not None and held.quantity.value != int(held.quantity.value):
+            scope.collector.add("number-unreadable", held.place, f"`{key}` counts whole tubes or passes", found=shown(held.text),
+                                expected="a whole number")
+
+
+def _bundle_checks(scope: Scope, geometry: Geometry, values: dict[str, str], tubes: str, length: str) -> tuple[ChainCheck, ...]:
+    """That a bundle keeps open tubes, a tube or more for each pass, and an effective length within the length."""
+    checks = []
+
+    def check(name: str, that: str, because: str, **figures: str) -> None:
+        if all(figures.values()):
+            limit = Limit(name, parse_expression(that), "stop", because, "common practice", "common practice", geometry.place)
+            checks.append(ChainCheck(f"geometry / bundle / {name}", "geometry", "bundle", limit, figures))
+
+    check("plugged", "N_plug < N_all", "some tubes are open", N_plug=values.get("plugged", ""), N_all=values.get("tubes", ""))
+    check("passes", "1 <= N_pass <= N_open", "each pass has a tube", N_pass=values.get("passes", ""), N_open=tubes)
+    if values.get("length"):
+        check("effective length", "L_eff <= L_t", "it is a part of the length", L_eff=values.get("effective length", ""),
+              L_t=length)
+    return tuple(checks)
 
 
 def _tubes_in_parallel(scope: Scope, geometry: Geometry, values: dict[str, str], tubes: str) -> str:

@@ -156,8 +156,7 @@ class Layer:
 
     ``resistance`` is the id of its area resistance on ``surface``; a wall whose conductivity follows
     its temperatures has ``steps`` that make it from T_1 and T_2. Fins have steps that make it from the
-    coefficient of the group named by ``film``, ``follows_film`` where that coefficient moves, and the
-    id of their surface ``efficiency``.
+    coefficient of the group named by ``film``, and the id of their surface ``efficiency``.
     """
 
     name: str
@@ -170,7 +169,6 @@ class Layer:
     material: str = ""
     checks: tuple[ChainCheck, ...] = ()
     film: str = ""
-    follows_film: bool = False
     efficiency: str = ""
 
 

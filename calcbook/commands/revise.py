@@ -16,10 +16,14 @@ FAULT = 2
 @click.argument("file", type=click.Path(path_type=Path, dir_okay=False), metavar="FILE")
 @click.option("--numbers", is_flag=True, help="Begin the numbers of a book with letters then numbers.")
 @click.option("--date", metavar="YYYY-MM-DD", help="Date of the revision; today without it.")
-@click.option("--output", type=click.Path(path_type=Path, file_okay=False), metavar="DIR",
-              help="Folder of the records; else the book's own, else ./output.")
+@click.option(
+    "--output",
+    type=click.Path(path_type=Path, file_okay=False),
+    metavar="DIR",
+    help="Folder of the records; else the book's own, else ./output.",
+)
 def command(file: Path, numbers: bool, date: str | None, output: Path | None) -> None:
-    """Write the next revision by the book's scheme into the file, with a line whose reason is to be filled in.
+    """Write the next revision by the book's scheme into the file, with a line whose reason is to be written.
 
     Nothing else of the file changes. The reason is an open item until it is written.
     """
@@ -39,4 +43,6 @@ def command(file: Path, numbers: bool, date: str | None, output: Path | None) ->
         sys.exit(FAULT)
     if not revised.was_issued:
         click.echo(f"revision {revised.was} was not issued", err=True)
-    click.echo(f"revision {revised.was} is now {revised.now} in {found.name}; write its reason in `revisions:`")
+    click.echo(
+        f"revision {revised.was} is now {revised.now} in {found.name}; write its reason in `revisions:`"
+    )

@@ -18,11 +18,24 @@ FAULT, NOT_CONVERGED = 2, 3
 @click.option("--person", required=True, metavar="ID", help="Id of a person of book.yaml.")
 @click.option("--date", metavar="YYYY-MM-DD", help="Date of the sign-off; today without it.")
 @click.option("--blind", is_flag=True, help="Store hand values for h and U before the form is written.")
-@click.option("--void", "because", metavar="REASON", help="Declare the calculation void, in place of signing it.")
-@click.option("--output", type=click.Path(path_type=Path, file_okay=False), metavar="DIR",
-              help="Folder of the records; else the book's own, else ./output.")
-def command(file: Path, role: str | None, person: str, date: str | None, blind: bool, because: str | None,
-            output: Path | None) -> None:
+@click.option(
+    "--void", "because", metavar="REASON", help="Declare the calculation void, in place of signing it."
+)
+@click.option(
+    "--output",
+    type=click.Path(path_type=Path, file_okay=False),
+    metavar="DIR",
+    help="Folder of the records; else the book's own, else ./output.",
+)
+def command(
+    file: Path,
+    role: str | None,
+    person: str,
+    date: str | None,
+    blind: bool,
+    because: str | None,
+    output: Path | None,
+) -> None:
     """Sign a calculation: the preparer first, then the checker, then who approves.
 
     A checker's first call writes a form beside the file; fill it in and give the same command again: it goes
@@ -40,8 +53,11 @@ def command(file: Path, role: str | None, person: str, date: str | None, blind: 
         found = find_calculations([file], output, collector)[0]
         work = open_work(found.path, found.name, found.output)
         day = parsed_date(date, Place(found.name))
-        step = declare_void(work, person, day, because) if because is not None else sign(work, role or "", person, day,
-                                                                                         blind)
+        step = (
+            declare_void(work, person, day, because)
+            if because is not None
+            else sign(work, role or "", person, day, blind)
+        )
     except Faults as faults:
         click.echo(str(faults), err=True)
         sys.exit(FAULT)

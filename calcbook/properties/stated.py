@@ -232,6 +232,10 @@ class StatedAtPressure(FluidAtPressure):
         )
 
 
+# The chart of ASTM D341 is drawn through two points to be read beyond them; common practice goes this far (K).
+LAW_REACH = 40.0
+
+
 def tabulated(
     columns: Mapping[str, tuple[ArrayLike, ArrayLike]],
     *,
@@ -298,7 +302,8 @@ def _viscosity(
     at, values = np.array(read[key].temperatures), np.array(read[key].values)
     kinematic = values if key == KINEMATIC else values / density.value(at)
     chosen = astm_d341(list(zip(at.tolist(), kinematic.tolist(), strict=True)))
-    return _LawColumn(chosen, density), rows
+    low, high = spans[key]
+    return _LawColumn(chosen, density), _meeting(density, (low - LAW_REACH, high + LAW_REACH), spans["density"])
 
 
 def _meeting(

@@ -1,4 +1,4 @@
-"""What a record shows of a calculation's life. Types only: who fills them knows sign-off files and issued copies."""
+"""What a record shows of a calculation's life. Types only: who fills them knows the files."""
 
 from __future__ import annotations
 
@@ -27,10 +27,10 @@ class SignOffLine:
 class Life:
     """State and sign-offs of a calculation, beside what was calculated.
 
-    ``issued`` says the kind, revision and date of the issue that this content has, or is empty. ``notice`` holds
-    the sentences that must stand on top of the record: a preliminary issue, a calculation that is void.
-    ``changes`` are the blocks of the short comparison with the last issued revision. ``answers`` are the words of
-    the checkers whose sign-off is valid, by the number of the question in the review.
+    ``issued`` says the kind, revision and date of the issue that this content has, or is empty. ``notice``
+    holds the sentences that must stand on top of the record: a preliminary issue, a calculation that is void.
+    ``changes`` are the blocks of the short comparison with the last issued revision. ``answers`` are the
+    words of the checkers whose sign-off is valid, by the number of the question in the review.
     """
 
     state: str = "in preparation"

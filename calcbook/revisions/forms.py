@@ -1,4 +1,4 @@
-"""The forms that a checker fills in: questions for a person, assumptions of the runner, the way of checking, hand values."""
+"""The forms that a checker fills in: questions, assumptions of the runner, way of checking, hand values."""
 
 from __future__ import annotations
 
@@ -26,46 +26,110 @@ ACKNOWLEDGED = "acknowledged"
 FEWEST_WORDS = 3  # beside ticks and figures: fewer make no sentence that another engineer could follow
 FEWEST_FIGURES = 3  # of digits in a figure that stands without its unit; a bare 2 is printed in every record
 TICKS = frozenset(
-    "ok okay k yes y ja no n x v done fine good correct right checked check agreed agree true tick ticked na none all"
-    " seen same passed pass accepted acceptable approved reviewed verified confirmed sure yep tbd todo ditto idem"
-    .split()
+    (
+        "ok",
+        "okay",
+        "k",
+        "yes",
+        "y",
+        "ja",
+        "no",
+        "n",
+        "x",
+        "v",
+        "done",
+        "fine",
+        "good",
+        "correct",
+        "right",
+        "checked",
+        "check",
+        "agreed",
+        "agree",
+        "true",
+        "tick",
+        "ticked",
+        "na",
+        "none",
+        "all",
+        "seen",
+        "same",
+        "passed",
+        "pass",
+        "accepted",
+        "acceptable",
+        "approved",
+        "reviewed",
+        "verified",
+        "confirmed",
+        "sure",
+        "yep",
+        "tbd",
+        "todo",
+        "ditto",
+        "idem",
+    )
 )
 # Symbols that are words of a sentence as well: they count as cited only when marked by a grave accent or `=`.
 WORD_SYMBOLS = frozenset(("A", "a", "I"))
 
-IDENTITY = Description("the head of the form", "what the form is for", (
-    Key("number", "number of the calculation", "name", required=True),
-    Key("revision", "revision that is checked", "name", required=True),
-    Key("role", "role that signs", "name", required=True),
-    Key("person", "id of the person", "name", required=True),
-    Key("digest", "digest of the content that is checked", "name", required=True),
-))
-QUESTION = Description("a question", "a question for a person", (
-    Key("number", "number in the review of the record", "name", required=True),
-    Key("question", "the question", required=True),
-    Key("answer", "sentences that cite a step, a given or a figure of the record"),
-))
-ASSUMPTION = Description("an assumption of the runner", "something that the runner decided", (
-    Key("id", "id in the record", "name", required=True),
-    Key("text", "what the runner took", required=True),
-    Key("decided by", "what decided it"),
-    Key("acknowledged", "the word acknowledged, or a sentence"),
-))
-FORM = Description("the form", "a checker's form", (
-    Key("form", "what the form is for", "mapping", of=IDENTITY, required=True),
-    Key("way of checking", " | ".join(WAYS)),
-    Key("checked with", "the calculation or document that it was checked with"),
-    Key("questions", "questions for a person", "list", of=QUESTION),
-    Key("assumptions", "assumptions of the runner", "list", of=ASSUMPTION),
-))
-HAND_VALUE = Description("a hand value", "a value found by hand", (
-    Key("result", "name of the result", "name", required=True),
-    Key("by hand", "number with unit"),
-))
-BLIND_FORM = Description("the form", "a form for hand values", (
-    Key("form", "what the form is for", "mapping", of=IDENTITY, required=True),
-    Key("values", "values found by hand", "list", of=HAND_VALUE, required=True),
-))
+IDENTITY = Description(
+    "the head of the form",
+    "what the form is for",
+    (
+        Key("number", "number of the calculation", "name", required=True),
+        Key("revision", "revision that is checked", "name", required=True),
+        Key("role", "role that signs", "name", required=True),
+        Key("person", "id of the person", "name", required=True),
+        Key("digest", "digest of the content that is checked", "name", required=True),
+    ),
+)
+QUESTION = Description(
+    "a question",
+    "a question for a person",
+    (
+        Key("number", "number in the review of the record", "name", required=True),
+        Key("question", "the question", required=True),
+        Key("answer", "sentences that cite a step, a given or a figure of the record"),
+    ),
+)
+ASSUMPTION = Description(
+    "an assumption of the runner",
+    "something that the runner decided",
+    (
+        Key("id", "id in the record", "name", required=True),
+        Key("text", "what the runner took", required=True),
+        Key("decided by", "what decided it"),
+        Key("acknowledged", "the word acknowledged, or a sentence"),
+    ),
+)
+FORM = Description(
+    "the form",
+    "a checker's form",
+    (
+        Key("form", "what the form is for", "mapping", of=IDENTITY, required=True),
+        Key("way of checking", " | ".join(WAYS)),
+        Key("checked with", "the calculation or document that it was checked with"),
+        Key("questions", "questions for a person", "list", of=QUESTION),
+        Key("assumptions", "assumptions of the runner", "list", of=ASSUMPTION),
+    ),
+)
+HAND_VALUE = Description(
+    "a hand value",
+    "a value found by hand",
+    (
+        Key("result", "name of the result", "name", required=True),
+        Key("by hand", "number with unit"),
+    ),
+)
+BLIND_FORM = Description(
+    "the form",
+    "a form for hand values",
+    (
+        Key("form", "what the form is for", "mapping", of=IDENTITY, required=True),
+        Key("values", "values found by hand", "list", of=HAND_VALUE, required=True),
+    ),
+)
 
 
 @dataclass(frozen=True, slots=True)
@@ -104,10 +168,10 @@ def form_text(solved: Solved, role: str, person: str) -> str:
     """The empty form of a role."""
     calculation = solved.chain.calculation
     lines = [
-        f"# Form for the role {role} of {calculation.number}, revision {calculation.revision}. Fill it in and give the",
-        "# command again: it takes the form into the sign-offs and removes it.",
-        "# Each answer is a sentence in your own words, in quotes, that cites something of the record: the id of a step,",
-        "# the symbol of a given, or a figure as it is printed. Ticks and empty answers are refused.",
+        f"# Form for the role {role} of {calculation.number}, revision {calculation.revision}.",
+        "# Fill it in and give the command again: it takes the form into the sign-offs and removes it.",
+        "# Each answer is a sentence in your own words, in quotes, that cites something of the record: the id",
+        "# of a step, the symbol of a given, or a figure as it is printed. Ticks and empty answers are refused.",
         *_identity(solved, role, person),
         "",
         f"# {' | '.join(WAYS)}",
@@ -121,11 +185,18 @@ def form_text(solved: Solved, role: str, person: str) -> str:
         lines += [f"  - number: {quoted(number)}", f"    question: {quoted(question)}", '    answer: ""']
     assumptions = runner_assumptions(solved)
     if assumptions:
-        lines += ["", "# What the runner decided by itself. Write `acknowledged`, or what you hold against it in a sentence.",
-                  "assumptions:"]
+        lines += [
+            "",
+            "# What the runner decided by itself. Write `acknowledged`, or a sentence of your own.",
+            "assumptions:",
+        ]
     for item in assumptions:
-        lines += [f"  - id: {quoted(item.id)}", f"    text: {quoted(item.text)}",
-                  f"    decided by: {quoted(item.decided_by)}", '    acknowledged: ""']
+        lines += [
+            f"  - id: {quoted(item.id)}",
+            f"    text: {quoted(item.text)}",
+            f"    decided by: {quoted(item.decided_by)}",
+            '    acknowledged: ""',
+        ]
     return "\n".join(lines) + "\n"
 
 
@@ -133,9 +204,9 @@ def blind_form_text(solved: Solved, role: str, person: str) -> str:
     """The empty form for hand values: names of results, and none of their figures."""
     calculation = solved.chain.calculation
     lines = [
-        f"# Hand values of the role {role} for {calculation.number}, revision {calculation.revision}, to be found before",
-        "# the record is read. Fill in what you found, at least one h and one U, each with its unit, and give the",
-        "# command again. They are stored as they stand, and shown beside the record's figures when you sign.",
+        f"# Hand values of the role {role} for {calculation.number}, revision {calculation.revision}.",
+        "# Find them before you read the record. Fill in at least one h and one U, each with its unit, and",
+        "# give the command again. They are stored as they stand, and shown beside the record's when you sign.",
         *_identity(solved, role, person),
         "",
         *yaml_lines({"values": [{"result": name, "by hand": ""} for name in blind_results(solved)]}),
@@ -145,14 +216,26 @@ def blind_form_text(solved: Solved, role: str, person: str) -> str:
 
 def _identity(solved: Solved, role: str, person: str) -> Iterable[str]:
     calculation = solved.chain.calculation
-    return yaml_lines({"form": {"number": calculation.number, "revision": calculation.revision, "role": role,
-                                "person": person, "digest": digest_of(solved).whole}})
+    return yaml_lines(
+        {
+            "form": {
+                "number": calculation.number,
+                "revision": calculation.revision,
+                "role": role,
+                "person": person,
+                "digest": digest_of(solved).whole,
+            }
+        }
+    )
 
 
 def blind_results(solved: Solved) -> tuple[str, ...]:
     """The results that may be found by hand: h of each film that a method gives, and U."""
-    films = [element.name for element in solved.chain.elements
-             if isinstance(element, Group) and any(branch.situation is not None for branch in element.branches)]
+    films = [
+        element.name
+        for element in solved.chain.elements
+        if isinstance(element, Group) and any(branch.situation is not None for branch in element.branches)
+    ]
     names = [f"h {film} {condition}" for film in films for condition in ("service", "clean")]
     return tuple(name for name in (*names, "U_service", "U_clean") if name in solved.base.results)
 
@@ -191,22 +274,40 @@ def _check_identity(fields: Fields, solved: Solved, role: str, person: str, coll
     wanted = {"number": calculation.number, "revision": calculation.revision, "role": role, "person": person}
     for name, text in wanted.items():
         if name in head and head.text(name) != text:
-            collector.add("form-of-another", head.place_of(name), f"the form is for another {name}",
-                          found=shown(head.text(name)), expected=text)
+            collector.add(
+                "form-of-another",
+                head.place_of(name),
+                f"the form is for another {name}",
+                found=shown(head.text(name)),
+                expected=text,
+            )
             return
     if "digest" in head and head.text("digest") != digest_of(solved).whole:
-        collector.add("form-stale", head.place_of("digest"), "the calculation has changed since the form was written",
-                      expected="a new form: move this one away, sign again, and copy what still holds")
+        collector.add(
+            "form-stale",
+            head.place_of("digest"),
+            "the calculation has changed since the form was written",
+            expected="a new form: move this one away, sign again, and copy what still holds",
+        )
 
 
 def _way(fields: Fields, collector: Collector) -> tuple[str, str]:
     way, other = fields.text("way of checking"), fields.text("checked with")
     if way not in WAYS:
-        collector.add("way-unknown", fields.place_of("way of checking"), "this is no way of checking", found=shown(way),
-                      expected=" | ".join(WAYS))
+        collector.add(
+            "way-unknown",
+            fields.place_of("way of checking"),
+            "this is no way of checking",
+            found=shown(way),
+            expected=" | ".join(WAYS),
+        )
     elif way != REVIEW and not words_of(other):
-        collector.add("answer-empty", fields.place_of("checked with"), f"`{way}` names what it was checked with",
-                      expected="number and revision of a calculation, or a document")
+        collector.add(
+            "answer-empty",
+            fields.place_of("checked with"),
+            f"`{way}` names what it was checked with",
+            expected="number and revision of a calculation, or a document",
+        )
     return way, other
 
 
@@ -222,21 +323,31 @@ def _answers(fields: Fields, known: Citable, collector: Collector) -> tuple[Answ
     for number, question in human_questions():
         item = found.get(number)
         if item is None:
-            collector.add("question-missing", fields.place_of("questions"), f"question {number} is missing",
-                          expected=question)
+            collector.add(
+                "question-missing",
+                fields.place_of("questions"),
+                f"question {number} is missing",
+                expected=question,
+            )
             continue
         answer = item.text("answer")
         fault = answer_fault(answer, known)
         if fault:
             code, message, expected = fault
-            collector.add(code, item.place_of("answer"), f"the answer to question {number} {message}", found=shown(answer),
-                          expected=expected)
+            collector.add(
+                code,
+                item.place_of("answer"),
+                f"the answer to question {number} {message}",
+                found=shown(answer),
+                expected=expected,
+            )
         answers.append(Answer(number, question, answer))
     return tuple(answers)
 
 
-def _acknowledged(fields: Fields, assumptions: Iterable[RunnerAssumption], collector: Collector
-                  ) -> tuple[Acknowledged, ...]:
+def _acknowledged(
+    fields: Fields, assumptions: Iterable[RunnerAssumption], collector: Collector
+) -> tuple[Acknowledged, ...]:
     found = {item.text("id"): item for item in _items(fields, "assumptions", ASSUMPTION, collector)}
     result = []
     for assumption in assumptions:
@@ -244,8 +355,13 @@ def _acknowledged(fields: Fields, assumptions: Iterable[RunnerAssumption], colle
         words = item.text("acknowledged") if item is not None else ""
         if words.casefold() != ACKNOWLEDGED and len(own_words(words)) < FEWEST_WORDS:
             place = item.place_of("acknowledged") if item is not None else fields.place_of("assumptions")
-            collector.add("assumption-not-acknowledged", place, f"the assumption {assumption.id} is not acknowledged",
-                          found=shown(words), expected=f"`{ACKNOWLEDGED}`, or a sentence, beside: {assumption.text}")
+            collector.add(
+                "assumption-not-acknowledged",
+                place,
+                f"the assumption {assumption.id} is not acknowledged",
+                found=shown(words),
+                expected=f"`{ACKNOWLEDGED}`, or a sentence, beside: {assumption.text}",
+            )
         result.append(Acknowledged(assumption.id, assumption.text, words))
     return tuple(result)
 
@@ -273,16 +389,23 @@ _WITH_UNIT = re.compile(r"(?<![\w.^-])(-?\d+(?:\.\d+)?(?:e-?\d+)?) ?(%|°C|°F|[
 
 def citable(solved: Solved, record: str) -> Citable:
     """What can be cited of a record."""
-    ids = {row.step.id for case in solved.cases for row in (*(row for term in case.chains for row in term.rows),
-                                                            *case.circuit)}
+    ids = {
+        row.step.id
+        for case in solved.cases
+        for row in (*(row for term in case.chains for row in term.rows), *case.circuit)
+    }
     ids |= {check.id for case in solved.cases for check in case.checks}
     ids |= {item.id for item in runner_assumptions(solved)}
     calculation = solved.chain.calculation
     symbols = {*calculation.givens, *calculation.derived, *(item.id for item in calculation.assumptions)}
     symbols |= {written_name(name) for name in symbols}
     text = _plain_figures(record.replace("\\", ""), _THIN)
-    return Citable(frozenset(_loose(name) for name in ids), frozenset(symbols), frozenset(_FIGURE.findall(text)),
-                   frozenset(f"{number} {unit}" for number, unit in _WITH_UNIT.findall(text)))
+    return Citable(
+        frozenset(_loose(name) for name in ids),
+        frozenset(symbols),
+        frozenset(_FIGURE.findall(text)),
+        frozenset(f"{number} {unit}" for number, unit in _WITH_UNIT.findall(text)),
+    )
 
 
 def _plain_figures(text: str, groups: re.Pattern[str]) -> str:
@@ -302,8 +425,11 @@ def answer_fault(answer: str, known: Citable) -> tuple[str, str, str] | None:
     if len(own_words(text)) < FEWEST_WORDS:
         return "answer-bare", "is a bare tick or a remark", "a sentence that another engineer can follow"
     if not cites(text, known):
-        return ("answer-cites-nothing", "cites nothing that the record has",
-                "the id of a step, the symbol of a given, or a figure as it is printed")
+        return (
+            "answer-cites-nothing",
+            "cites nothing that the record has",
+            "the id of a step, the symbol of a given, or a figure as it is printed",
+        )
     return None
 
 
@@ -348,7 +474,10 @@ def _stands_in(name: str, text: str) -> bool:
 
 
 def read_blind_form(path: Path, solved: Solved, role: str, person: str) -> tuple[HandValue, ...]:
-    """The hand values of a filled form. Raises ``Faults``: hand-value-missing, result-unknown, those of quantities."""
+    """The hand values of a filled form.
+
+    Raises ``Faults``: hand-value-missing, result-unknown, those of quantities.
+    """
     collector = Collector()
     fields = _form_fields(path, BLIND_FORM, collector)
     _check_identity(fields, solved, role, person, collector)
@@ -358,15 +487,24 @@ def read_blind_form(path: Path, solved: Solved, role: str, person: str) -> tuple
         name, text = item.text("result"), item.text("by hand")
         result = solved.base.results.get(name)
         if name not in blind_results(solved) or result is None:
-            collector.add("result-unknown", item.place_of("result"), "this is none of the results to be found by hand",
-                          found=shown(name), expected=", ".join(blind_results(solved)))
+            collector.add(
+                "result-unknown",
+                item.place_of("result"),
+                "this is none of the results to be found by hand",
+                found=shown(name),
+                expected=", ".join(blind_results(solved)),
+            )
         elif text and _is_readable(text, result, item.place_of("by hand"), collector):
             values.append(HandValue(name, text))
     for letter in ("h", "U"):
         wanted = [name for name in blind_results(solved) if name.startswith(letter)]
         if wanted and not any(value.result in wanted for value in values):
-            collector.add("hand-value-missing", fields.place_of("values"), f"no {letter} is found by hand",
-                          expected=f"one of {', '.join(wanted)}")
+            collector.add(
+                "hand-value-missing",
+                fields.place_of("values"),
+                f"no {letter} is found by hand",
+                expected=f"one of {', '.join(wanted)}",
+            )
     collector.stop_if_any()
     return tuple(values)
 
@@ -375,7 +513,9 @@ def _is_readable(text: str, result: Result, place: Place, collector: Collector) 
     try:
         read_quantity(text, result.kind)
     except QuantityFault as error:
-        collector.take([Fault(error.code, place, error.message, error.found, error.expected, tuple(error.nearest))])
+        collector.take(
+            [Fault(error.code, place, error.message, error.found, error.expected, tuple(error.nearest))]
+        )
         return False
     return True
 
@@ -389,9 +529,20 @@ def revealed(values: HandValues, solved: Solved) -> tuple[HandValue, ...]:
     for item in values.values:
         result = solved.base.results.get(item.result)
         if result is None:
-            raise Faults([Fault("result-unknown", Place(solved.chain.calculation.file), "a result that was found by hand is"
-                                " no longer there", item.result, "hand values for the calculation as it is now")])
+            raise Faults(
+                [
+                    Fault(
+                        "result-unknown",
+                        Place(solved.chain.calculation.file),
+                        "a result that was found by hand is no longer there",
+                        item.result,
+                        "hand values for the calculation as it is now",
+                    )
+                ]
+            )
         by_hand = read_quantity(item.value, result.kind).value
         figure = in_report_unit(result.value, result.kind, solved.chain.calculation.report, 4)
-        found.append(HandValue(item.result, item.value, figure, percent((by_hand - result.value) / result.value)))
+        found.append(
+            HandValue(item.result, item.value, figure, percent((by_hand - result.value) / result.value))
+        )
     return tuple(found)

@@ -7,6 +7,7 @@ import os
 import shutil
 import tempfile
 from collections.abc import Iterator, Mapping
+from dataclasses import replace
 from pathlib import Path
 
 from calcbook.calcfile import BOOK_FILE
@@ -50,8 +51,8 @@ __all__ = ["check_seal", "issue"]
 def issue(work: Work, date: datetime.date, preliminary: bool = False) -> Issued:
     """Freeze a calculation under its revision, and write its record anew.
 
-    The folder of the issued copy appears whole or not at all. A final issue needs valid sign-offs of every role
-    and no open item; a preliminary one needs that of the preparer, and no open item where the book refuses any.
+    The folder of the issued copy appears whole or not at all. A final issue needs valid sign-offs of every
+    role and no open item; a preliminary one that of the preparer, and no open item where the book refuses it.
     Raises ``Faults``: issue-sign-off, issue-open-item, calculation-void, revision-issued, revision-not-later,
     revision-not-listed, date-order; ``OSError`` where the folder cannot be written.
     """
@@ -75,37 +76,63 @@ def _check_revision(work: Work, lifecycle: Lifecycle, collector: Collector) -> N
     place = head_place(work, "revision")
     latest = lifecycle.latest_issued
     if latest is not None and revision_order(calculation.revision) <= revision_order(latest.revision):
-        collector.add("revision-not-later", place, f"revision {calculation.revision} does not come after"
-                      f" {latest.revision}, which is issued", expected=f"a revision after {latest.revision}")
+        collector.add(
+            "revision-not-later",
+            place,
+            f"revision {calculation.revision} does not come after {latest.revision}, which is issued",
+            expected=f"a revision after {latest.revision}",
+        )
     if not any(item.revision == calculation.revision for item in calculation.revisions):
-        collector.add("revision-not-listed", place, f"the revision history has no line for {calculation.revision}",
-                      expected=f"revisions: - {{revision: {calculation.revision}, date: …, reason: …}}")
+        collector.add(
+            "revision-not-listed",
+            place,
+            f"the revision history has no line for {calculation.revision}",
+            expected=f"revisions: - {{revision: {calculation.revision}, date: …, reason: …}}",
+        )
 
 
-def _check_signoffs(work: Work, lifecycle: Lifecycle, date: datetime.date, preliminary: bool, collector: Collector
-                    ) -> None:
+def _check_signoffs(
+    work: Work, lifecycle: Lifecycle, date: datetime.date, preliminary: bool, collector: Collector
+) -> None:
     for item in lifecycle.signoffs:
         if preliminary and item.role != PREPARED:
             continue
         if item.validity != VALID:
             why = f": {'; '.join(item.why)}" if item.why else ""
-            collector.add("issue-sign-off", work.place, f"the sign-off {item.role} is {item.validity}{why}",
-                          expected=f"calcbook sign {work.name} --role {item.role} --person …")
+            collector.add(
+                "issue-sign-off",
+                work.place,
+                f"the sign-off {item.role} is {item.validity}{why}",
+                expected=f"calcbook sign {work.name} --role {item.role} --person …",
+            )
         elif item.signoff is not None and date.isoformat() < item.signoff.date:
-            collector.add("date-order", work.place, f"an issue on {date.isoformat()} lies before the sign-off {item.role}",
-                          found=date.isoformat(), expected=f"{item.signoff.date} or later")
+            collector.add(
+                "date-order",
+                work.place,
+                f"an issue on {date.isoformat()} lies before the sign-off {item.role}",
+                found=date.isoformat(),
+                expected=f"{item.signoff.date} or later",
+            )
     latest = lifecycle.latest_issued
     if latest is not None and date.isoformat() < latest.date:
-        collector.add("date-order", work.place, f"an issue on {date.isoformat()} lies before that of {latest.revision}",
-                      found=date.isoformat(), expected=f"{latest.date} or later")
+        collector.add(
+            "date-order",
+            work.place,
+            f"an issue on {date.isoformat()} lies before that of {latest.revision}",
+            found=date.isoformat(),
+            expected=f"{latest.date} or later",
+        )
 
 
 def _check_open_items(work: Work, lifecycle: Lifecycle, preliminary: bool, collector: Collector) -> None:
-    """A preliminary issue may have open items where the book lets it, but never a reason that is to be written."""
+    """A preliminary issue may have open items where the book lets it, never a reason to be written."""
     calculation = work.solved.chain.calculation
     lets_pass = preliminary and calculation.settings.open_items != REFUSE_ANY
-    cure = "the item closed" if preliminary or calculation.settings.open_items == REFUSE_ANY else \
-        "the item closed, or a preliminary issue"
+    cure = (
+        "the item closed"
+        if preliminary or calculation.settings.open_items == REFUSE_ANY
+        else "the item closed, or a preliminary issue"
+    )
     for item in unwritten_reasons(calculation) if lets_pass else lifecycle.open_items:
         collector.add("issue-open-item", work.place, f"open item {item.id}: {item.text}", expected=cure)
 
@@ -120,20 +147,36 @@ def _frozen(work: Work, lifecycle: Lifecycle, date: datetime.date, kind: str) ->
     digest = digest_of(work.solved)
     software = software_of(digest)
     latest = lifecycle.latest_issued
-    copy = Issued(target, calculation.number, calculation.revision, kind, date.isoformat(),
-                  latest.revision if latest is not None else "", latest.whole if latest is not None else "",
-                  {part: getattr(digest, part) for part in PARTS},
-                  {"calcbook": software.calcbook, "CoolProp": software.coolprop, "library": software.library}, {})
+    copy = Issued(
+        target,
+        calculation.number,
+        calculation.revision,
+        kind,
+        date.isoformat(),
+        latest.revision if latest is not None else "",
+        latest.whole if latest is not None else "",
+        {part: getattr(digest, part) for part in PARTS},
+        {"calcbook": software.calcbook, "CoolProp": software.coolprop, "library": software.library},
+        {},
+    )
     issued = with_issue(lifecycle, copy)
     changes = changes_of(work.path, work.solved, work.output, issued)
     texts = dict(_copied(work))
     if RECORD in texts or RESULTS in texts or SEAL_NAME in texts:
-        raise Faults([Fault("name-not-allowed", work.place, "a table file has the name of a part of the issued copy", "",
-                            "another name for the table file")])
+        raise Faults(
+            [
+                Fault(
+                    "name-not-allowed",
+                    work.place,
+                    "a table file has the name of a part of the issued copy",
+                    "",
+                    "another name for the table file",
+                )
+            ]
+        )
     texts[RECORD] = record_text(work.solved, life_from(issued, calculation.settings, changes)).encode("utf-8")
     texts[RESULTS] = results_text(work.solved, digest, software).encode("utf-8")
-    copy = Issued(*(getattr(copy, name) for name in Issued.__slots__ if name not in ("files", "whole")),
-                  {name: sha256_of(data) for name, data in sorted(texts.items())})
+    copy = replace(copy, files={name: sha256_of(data) for name, data in sorted(texts.items())})
     _write_folder(target, {**texts, SEAL_NAME: seal_text(copy).encode("utf-8")}, work)
     return copy
 
@@ -153,7 +196,10 @@ def _copied(work: Work) -> Iterator[tuple[str, bytes]]:
     for table in sorted(set(_table_files(calculation.meaning))):
         yield table, (work.path.parent / table).read_bytes()
     signoffs = signoffs_path(work.path)
-    yield SIGNOFFS, signoffs.read_bytes() if signoffs.is_file() else signoffs_text(SignOffFile()).encode("utf-8")
+    yield (
+        SIGNOFFS,
+        signoffs.read_bytes() if signoffs.is_file() else signoffs_text(SignOffFile()).encode("utf-8"),
+    )
 
 
 def _table_files(meaning: object) -> Iterator[str]:
@@ -188,6 +234,15 @@ def _write_folder(target: Path, files: Mapping[str, bytes], work: Work) -> None:
     except BaseException as error:
         shutil.rmtree(scratch, ignore_errors=True)
         if isinstance(error, OSError) and target.exists():
-            raise Faults([Fault("revision-issued", work.place, f"revision {target.name} is issued already", "",
-                                "the next revision: calcbook revise")]) from None
+            raise Faults(
+                [
+                    Fault(
+                        "revision-issued",
+                        work.place,
+                        f"revision {target.name} is issued already",
+                        "",
+                        "the next revision: calcbook revise",
+                    )
+                ]
+            ) from None
         raise

@@ -1,4 +1,4 @@
-"""The life of a calculation: revision, state and confirmation, all derived from evidence, none of them typed."""
+"""The life of a calculation: state, confirmation and validity, derived from evidence, none of them typed."""
 
 from __future__ import annotations
 
@@ -60,7 +60,8 @@ class Judged:
 class Lifecycle:
     """State, confirmation, sign-offs by role, issued copies (oldest first) and open items of a calculation.
 
-    ``current`` is the issued copy of the file's own revision, ``is_current`` whether its content is the file's.
+    ``current`` is the issued copy of the file's own revision, ``is_current`` whether its content is that of
+    the file.
     """
 
     number: str
@@ -89,7 +90,8 @@ class Lifecycle:
 def lifecycle_of(calc_path: Path, solved: Solved | None, output: Path) -> Lifecycle:
     """The life of a calculation file whose records stand under ``output``.
 
-    Without ``solved`` (a file with a fault) state, confirmation and sign-offs are not known; issued copies are.
+    Without ``solved`` (a file with a fault) state, confirmation and sign-offs are not known; issued copies
+    are.
     Raises ``Faults``: sign-offs-unreadable, seal-unreadable.
     """
     if solved is None:
@@ -100,12 +102,26 @@ def lifecycle_of(calc_path: Path, solved: Solved | None, output: Path) -> Lifecy
     content = content_of(solved)
     judged = judge(kept, calculation, content)
     items = open_items_of(solved)
-    current = next((copy for copy in copies if copy.revision.casefold() == calculation.revision.casefold()), None)
-    is_current = current is not None and all(current.digest.get(part) == getattr(content.digest, part) for part in PARTS)
+    current = next(
+        (copy for copy in copies if copy.revision.casefold() == calculation.revision.casefold()), None
+    )
+    is_current = current is not None and all(
+        current.digest.get(part) == getattr(content.digest, part) for part in PARTS
+    )
     state = _state(judged, calculation.settings, copies, current if is_current else None, kept.void)
     confirmation = PRELIMINARY if items else CONFIRMED
-    return Lifecycle(calculation.number, calculation.revision, state, confirmation, judged, copies, items, current,
-                     is_current, kept.void)
+    return Lifecycle(
+        calculation.number,
+        calculation.revision,
+        state,
+        confirmation,
+        judged,
+        copies,
+        items,
+        current,
+        is_current,
+        kept.void,
+    )
 
 
 def _unsolved(calc_path: Path, output: Path) -> Lifecycle:
@@ -116,29 +132,43 @@ def _unsolved(calc_path: Path, output: Path) -> Lifecycle:
         root = None
     head = root.get("calculation") if isinstance(root, Mapping) else None
     if isinstance(head, Mapping):
-        number, revision = (found.text if isinstance(found := head.get(name), Scalar) else ""
-                            for name in ("number", "revision"))
+        number, revision = (
+            found.text if isinstance(found := head.get(name), Scalar) else ""
+            for name in ("number", "revision")
+        )
     copies = issued_copies(output, number) if NUMBER.fullmatch(number) else ()
     void = read_signoffs(signoffs_path(calc_path)).void
-    return Lifecycle(number, revision, VOID if void else NOT_KNOWN, NOT_KNOWN, (), copies, (), None, False, void)
+    return Lifecycle(
+        number, revision, VOID if void else NOT_KNOWN, NOT_KNOWN, (), copies, (), None, False, void
+    )
 
 
 def open_items_of(solved: Solved) -> tuple[OpenItem, ...]:
-    """The open items of every case, and those of the revision history: a reason that is still to be written."""
+    """The open items of every case, and of the revision history: a reason that is still to be written."""
     found = {item.id: item for item in (*solved.open_items, *unwritten_reasons(solved.chain.calculation))}
     return tuple(found.values())
 
 
 def unwritten_reasons(calculation: Calculation) -> tuple[OpenItem, ...]:
     """An open item for each line of the revision history whose reason is still to be written."""
-    return tuple(OpenItem(f"revision {item.revision} / reason", "revision",
-                          f"The reason of revision {item.revision} is to be written.")
-                 for item in calculation.revisions
-                 if item.reason.casefold().strip(" .…") in (TO_BE_WRITTEN, "tbd", ""))
+    return tuple(
+        OpenItem(
+            f"revision {item.revision} / reason",
+            "revision",
+            f"The reason of revision {item.revision} is to be written.",
+        )
+        for item in calculation.revisions
+        if item.reason.casefold().strip(" .…") in (TO_BE_WRITTEN, "tbd", "")
+    )
 
 
-def _state(judged: Sequence[Judged], settings: Settings, copies: Sequence[Issued], issued: Issued | None,
-           void: Voiding | None) -> str:
+def _state(
+    judged: Sequence[Judged],
+    settings: Settings,
+    copies: Sequence[Issued],
+    issued: Issued | None,
+    void: Voiding | None,
+) -> str:
     if void is not None:
         return VOID
     if issued is not None:
@@ -172,12 +202,21 @@ def judge(kept: SignOffFile, calculation: Calculation, content: Content) -> tupl
             result.append(Judged(role, None, MISSING, notes=notes))
             continue
         why = _why_void(entry, calculation, content, result)
-        result.append(Judged(role, entry, VOID if why else VALID, tuple(why),
-                             tuple(_notes(entry, calculation.settings, content, result))))
+        result.append(
+            Judged(
+                role,
+                entry,
+                VOID if why else VALID,
+                tuple(why),
+                tuple(_notes(entry, calculation.settings, content, result)),
+            )
+        )
     return tuple(result)
 
 
-def _why_void(entry: SignOff, calculation: Calculation, content: Content, before: Sequence[Judged]) -> list[str]:
+def _why_void(
+    entry: SignOff, calculation: Calculation, content: Content, before: Sequence[Judged]
+) -> list[str]:
     settings = calculation.settings
     why = list(changed_since(entry.content, content))
     if not is_unaltered(entry):
@@ -202,8 +241,11 @@ def _person_rule(entry: SignOff, calculation: Calculation) -> list[str]:
     if entry.role == PREPARED and not is_preparer:
         return [f"the file is prepared by {calculation.prepared_by}"]
     if entry.role != PREPARED and (is_preparer or not preparer):
-        return ["the preparer cannot sign for this role" if preparer else
-                f"{calculation.prepared_by}, who prepared the file, is not among the people of the book"]
+        return [
+            "the preparer cannot sign for this role"
+            if preparer
+            else f"{calculation.prepared_by}, who prepared the file, is not among the people of the book"
+        ]
     return []
 
 
@@ -213,8 +255,11 @@ def _notes(entry: SignOff, settings: Settings, content: Content, before: Sequenc
     if versions and entry.content.digest.results == content.digest.results:
         notes.append(f"{versions}: no displayed digit changed")
     for item in before:
-        if (item.role != PREPARED and item.signoff is not None
-                and is_same_person(settings, item.signoff.person, entry.person)):
+        if (
+            item.role != PREPARED
+            and item.signoff is not None
+            and is_same_person(settings, item.signoff.person, entry.person)
+        ):
             notes.append(f"the same person signed {item.role}")
     if entry.checked_with:
         notes.append(f"checked with {entry.checked_with}")
@@ -226,8 +271,10 @@ def _notes(entry: SignOff, settings: Settings, content: Content, before: Sequenc
 def _blind_words(entry: SignOff) -> str:
     blind = entry.blind
     assert blind is not None
-    values = "; ".join(f"{item.result} {item.value} by hand, {item.shown} in the record, deviation {item.deviation}"
-                       for item in blind.values)
+    values = "; ".join(
+        f"{item.result} {item.value} by hand, {item.shown} in the record, deviation {item.deviation}"
+        for item in blind.values
+    )
     altered = "" if are_unaltered(blind) else " (altered after they were stored)"
     other = "" if blind.digest == entry.content.digest.meaning else " for another content"
     return f"hand values stored on {blind.date}{other} before the form was filled in{altered}: {values}"
@@ -239,20 +286,33 @@ def _blind_words(entry: SignOff) -> str:
 def life_of(calc_path: Path, solved: Solved, output: Path) -> Life:
     """What the record shows of the life of a calculation. Raises ``Faults`` as ``lifecycle_of`` does."""
     lifecycle = lifecycle_of(calc_path, solved, output)
-    return life_from(lifecycle, solved.chain.calculation.settings, changes_of(calc_path, solved, output, lifecycle))
+    return life_from(
+        lifecycle, solved.chain.calculation.settings, changes_of(calc_path, solved, output, lifecycle)
+    )
 
 
 def life_from(lifecycle: Lifecycle, settings: Settings, changes: tuple[Block, ...] = ()) -> Life:
     """The lines of the record from a lifecycle that is known."""
     lines = tuple(_line(item, settings) for item in lifecycle.signoffs)
-    return Life(lifecycle.state, lines, issue_words(lifecycle), _notice(lifecycle), changes, _answers(lifecycle, settings))
+    return Life(
+        lifecycle.state,
+        lines,
+        issue_words(lifecycle),
+        _notice(lifecycle),
+        changes,
+        _answers(lifecycle, settings),
+    )
 
 
 def _answers(lifecycle: Lifecycle, settings: Settings) -> tuple[tuple[int, str], ...]:
     """The words of valid sign-offs to the questions that only a person can answer, with who says so."""
-    return tuple((int(answer.number), f"{printed_name(settings, entry.person)}: {answer.answer}")
-                 for item in lifecycle.signoffs if item.validity == VALID and (entry := item.signoff) is not None
-                 for answer in entry.answers if answer.number.isdecimal())
+    return tuple(
+        (int(answer.number), f"{printed_name(settings, entry.person)}: {answer.answer}")
+        for item in lifecycle.signoffs
+        if item.validity == VALID and (entry := item.signoff) is not None
+        for answer in entry.answers
+        if answer.number.isdecimal()
+    )
 
 
 def _line(item: Judged, settings: Settings) -> SignOffLine:
@@ -271,7 +331,9 @@ def issue_words(lifecycle: Lifecycle) -> str:
         return ""
     words = f"{copy.kind} issue of revision {copy.revision} on {copy.date}"
     words += f", supersedes revision {copy.supersedes}" if copy.supersedes else ""
-    return words if lifecycle.is_current else f"{words}; the file has changed since and needs its next revision"
+    return (
+        words if lifecycle.is_current else f"{words}; the file has changed since and needs its next revision"
+    )
 
 
 def _notice(lifecycle: Lifecycle) -> tuple[str, ...]:
@@ -296,11 +358,17 @@ def changes_of(calc_path: Path, solved: Solved, output: Path, lifecycle: Lifecyc
     try:
         old = load_issued(copy.number, copy.revision, output)
     except (Faults, NotConverged):
-        return (Paragraph(f"Revision {copy.revision}, the last one issued, cannot be solved with this software: nothing"
-                          " is compared."),)
+        return (
+            Paragraph(
+                f"Revision {copy.revision}, the last one issued, cannot be solved with this software: nothing"
+                " is compared."
+            ),
+        )
     return tuple(short_blocks(compare(old, load_side(calc_path.name, calc_path.parent, output))))
 
 
 def with_issue(lifecycle: Lifecycle, copy: Issued) -> Lifecycle:
     """The lifecycle as it is once a copy of the file's content is issued."""
-    return replace(lifecycle, state=ISSUED_STATE, issued=(*lifecycle.issued, copy), current=copy, is_current=True)
+    return replace(
+        lifecycle, state=ISSUED_STATE, issued=(*lifecycle.issued, copy), current=copy, is_current=True
+    )

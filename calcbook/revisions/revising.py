@@ -32,8 +32,8 @@ def revise(path: Path, name: str, output: Path, date: datetime.date, numbers: bo
     """Begin the next revision in a file: its name, its date, and a line whose reason is to be written.
 
     Comments and layout stay. ``numbers`` begins the numbers of a book with letters then numbers.
-    Raises ``Faults``: revision-begun, revision-scheme, date-order, revise-by-hand, calculation-void, and those of
-    the YAML reader; ``OSError``. The file may have faults of meaning: revising does not solve it.
+    Raises ``Faults``: revision-begun, revision-scheme, date-order, revise-by-hand, calculation-void, and
+    those of the YAML reader; ``OSError``. The file may have faults of meaning: revising does not solve it.
     """
     data = path.read_bytes() if path.is_file() else b""
     text = _Text(data, path, name)
@@ -43,7 +43,17 @@ def revise(path: Path, name: str, output: Path, date: datetime.date, numbers: bo
         raise _by_hand(text.root.place, "the title block has no revision")
     lifecycle = lifecycle_of(path, None, output)
     if lifecycle.void is not None:
-        raise Faults([Fault("calculation-void", node.place, f"{lifecycle.number} is void", "", "a new number for new work")])
+        raise Faults(
+            [
+                Fault(
+                    "calculation-void",
+                    node.place,
+                    f"{lifecycle.number} is void",
+                    "",
+                    "a new number for new work",
+                )
+            ]
+        )
     _refuse_begun(text.root, node)
     issued = {copy.revision.casefold() for copy in lifecycle.issued}
     final = any(copy.kind == FINAL for copy in lifecycle.issued)
@@ -66,9 +76,19 @@ def next_revision(revision: str, scheme: str, numbers: bool = False, place: Plac
         return FIRST_NUMBER if scheme == BOTH and numbers else _next_letter(revision)
     if is_number and scheme in (NUMBERS, BOTH):
         return str(int(revision) + 1).zfill(len(revision))
-    raise Faults([Fault("revision-scheme", place or Place(revision), f"revision {shown(revision)} does not fit the book's"
-                        f" scheme `{scheme}`", shown(revision), {LETTERS: "a letter such as A", NUMBERS:
-                        "a number such as 1"}.get(scheme, "a letter or a number"))])
+    raise Faults(
+        [
+            Fault(
+                "revision-scheme",
+                place or Place(revision),
+                f"revision {shown(revision)} does not fit the book's scheme `{scheme}`",
+                shown(revision),
+                {LETTERS: "a letter such as A", NUMBERS: "a number such as 1"}.get(
+                    scheme, "a letter or a number"
+                ),
+            )
+        ]
+    )
 
 
 def _next_letter(revision: str) -> str:
@@ -87,23 +107,52 @@ def _next_letter(revision: str) -> str:
 def _refuse_begun(root: Mapping, node: Scalar) -> None:
     lines = root.get("revisions")
     for item in lines.items if isinstance(lines, Sequence) else ():
-        revision, reason = (found.text if isinstance(item, Mapping) and isinstance(found := item.get(key), Scalar) else ""
-                            for key in ("revision", "reason"))
+        revision, reason = (
+            found.text if isinstance(item, Mapping) and isinstance(found := item.get(key), Scalar) else ""
+            for key in ("revision", "reason")
+        )
         if revision == node.text and reason.casefold().strip(" .") == TO_BE_WRITTEN:
-            raise Faults([Fault("revision-begun", item.place, f"revision {revision} is begun and its reason is not written",
-                                "", "its reason first")])
+            raise Faults(
+                [
+                    Fault(
+                        "revision-begun",
+                        item.place,
+                        f"revision {revision} is begun and its reason is not written",
+                        "",
+                        "its reason first",
+                    )
+                ]
+            )
 
 
 def _refuse_earlier(head: Mapping, date: datetime.date) -> None:
     node = head.get("date")
     if isinstance(node, Scalar) and date.isoformat() < node.text:
-        raise Faults([Fault("date-order", node.place, f"a revision of {date.isoformat()} is older than the file",
-                            date.isoformat(), f"{node.text} or later")])
+        raise Faults(
+            [
+                Fault(
+                    "date-order",
+                    node.place,
+                    f"a revision of {date.isoformat()} is older than the file",
+                    date.isoformat(),
+                    f"{node.text} or later",
+                )
+            ]
+        )
 
 
 def _by_hand(place: Place, message: str) -> Faults:
-    return Faults([Fault("revise-by-hand", place, message, "", "the new revision and its line in `revisions:` written by"
-                         " hand")])
+    return Faults(
+        [
+            Fault(
+                "revise-by-hand",
+                place,
+                message,
+                "",
+                "the new revision and its line in `revisions:` written by hand",
+            )
+        ]
+    )
 
 
 def _without_comment(line: str) -> str:
@@ -149,7 +198,11 @@ class _Text:
             head["date"] = date
         lines = meaning.get("revisions")
         line = {"revision": revision, "date": date, "reason": TO_BE_WRITTEN}
-        return {**meaning, "calculation": head, "revisions": [*(lines if isinstance(lines, list) else []), line]}
+        return {
+            **meaning,
+            "calculation": head,
+            "revisions": [*(lines if isinstance(lines, list) else []), line],
+        }
 
     def _put(self, node: Scalar, text: str) -> None:
         """Write a scalar anew in its line, in quotes where it stood in quotes."""
@@ -193,9 +246,11 @@ class _Text:
                 return
 
     def _last_line(self, first: int, keys: list[int]) -> int:
-        """The number of lines up to the last one, from ``first`` on, that belongs to the entry that starts there."""
+        """The number of lines up to the last one that belongs to the entry that starts at ``first``."""
         following = min((line for line in keys if line > first), default=len(self.lines) + 1)
         last = following - 1
-        while last > first and (not self.lines[last - 1].strip() or self.lines[last - 1].lstrip().startswith("#")):
+        while last > first and (
+            not self.lines[last - 1].strip() or self.lines[last - 1].lstrip().startswith("#")
+        ):
             last -= 1
         return last

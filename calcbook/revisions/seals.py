@@ -1,4 +1,4 @@
-"""Issued copies and their seals: what was frozen under a revision, and whether it still is what was frozen."""
+"""Issued copies and their seals: what was frozen under a revision, and whether it still is so."""
 
 from __future__ import annotations
 
@@ -15,7 +15,12 @@ SEAL_NAME, SEAL = "seal.json", "calcbook-seal-1"
 ISSUED = "issued"
 FINAL, PRELIMINARY = "final", "preliminary"
 CALCULATION, BOOK, RECORD, RESULTS, SIGNOFFS = (
-    "calculation.yaml", "book.yaml", "record.md", "results.json", "signoffs.yaml")
+    "calculation.yaml",
+    "book.yaml",
+    "record.md",
+    "results.json",
+    "signoffs.yaml",
+)
 TEXTS = ("number", "revision", "kind", "date", "supersedes", "supersedes_seal", "whole")
 REVISION = re.compile(r"[A-Za-z0-9][A-Za-z0-9.-]{0,9}")
 
@@ -93,13 +98,36 @@ def read_seal(folder: Path) -> Issued:
         data = json.loads(path.read_bytes().decode("utf-8"))
         if data["seal"] != SEAL or not all(isinstance(data[name], str) for name in TEXTS):
             raise ValueError
-        mappings = [{str(key): str(value) for key, value in data[name].items()} for name in ("digest", "software", "files")]
+        digest, software, files = (
+            {str(key): str(value) for key, value in data[name].items()}
+            for name in ("digest", "software", "files")
+        )
     except (OSError, ValueError, KeyError, TypeError, AttributeError):
         place = Place(path.as_posix())
-        raise Faults([Fault("seal-unreadable", place, "the seal of this issued copy cannot be read", "",
-                            "the folder as it was issued: take it back from the commit of its issue")]) from None
-    return Issued(folder, data["number"], data["revision"], data["kind"], data["date"], data["supersedes"],
-                  data["supersedes_seal"], *mappings, data["whole"])
+        raise Faults(
+            [
+                Fault(
+                    "seal-unreadable",
+                    place,
+                    "the seal of this issued copy cannot be read",
+                    "",
+                    "the folder as it was issued: take it back from the commit of its issue",
+                )
+            ]
+        ) from None
+    return Issued(
+        folder,
+        data["number"],
+        data["revision"],
+        data["kind"],
+        data["date"],
+        data["supersedes"],
+        data["supersedes_seal"],
+        digest,
+        software,
+        files,
+        data["whole"],
+    )
 
 
 def check_seal(folder: Path) -> tuple[SealFinding, ...]:
@@ -116,7 +144,9 @@ def check_seal(folder: Path) -> tuple[SealFinding, ...]:
     if (folder / SEAL_NAME).read_bytes() != seal_text(issued).encode("utf-8"):
         findings.append(SealFinding(SEAL_NAME, "the seal was altered after the issue"))
     if issued.revision != folder.name:
-        findings.append(SealFinding(SEAL_NAME, f"the seal is of revision {issued.revision}, the folder of {folder.name}"))
+        findings.append(
+            SealFinding(SEAL_NAME, f"the seal is of revision {issued.revision}, the folder of {folder.name}")
+        )
     present = {path.relative_to(folder).as_posix() for path in folder.rglob("*") if not path.is_dir()}
     for name in sorted(present - set(issued.files) - {SEAL_NAME}):
         findings.append(SealFinding(name, "the file was added after the issue"))
@@ -129,10 +159,16 @@ def check_seal(folder: Path) -> tuple[SealFinding, ...]:
 
 
 def check_seals(output: Path, number: str) -> tuple[tuple[str, SealFinding], ...]:
-    """The findings of every issued copy of a calculation, by revision, with the seals held against each other."""
+    """The findings of every issued copy of a calculation, by revision; seals are held against each other."""
     folder = issued_folder(output, number)
-    names = sorted((path.name for path in folder.iterdir() if path.is_dir() and not path.name.startswith(".")),
-                   key=revision_order) if folder.is_dir() else []
+    names = (
+        sorted(
+            (path.name for path in folder.iterdir() if path.is_dir() and not path.name.startswith(".")),
+            key=revision_order,
+        )
+        if folder.is_dir()
+        else []
+    )
     findings = [(name, finding) for name in names for finding in check_seal(folder / name)]
     if findings:
         return tuple(findings)
@@ -140,9 +176,13 @@ def check_seals(output: Path, number: str) -> tuple[tuple[str, SealFinding], ...
     for name, copy in copies.items():
         older = copies.get(copy.supersedes)
         if copy.supersedes and older is None:
-            findings.append((name, SealFinding(SEAL_NAME, f"the copy {copy.supersedes} that it supersedes is missing")))
+            findings.append(
+                (name, SealFinding(SEAL_NAME, f"the copy {copy.supersedes} that it supersedes is missing"))
+            )
         elif older is not None and older.whole != copy.supersedes_seal:
-            findings.append((copy.supersedes, SealFinding(SEAL_NAME, f"the copy was sealed anew after {name} was issued")))
+            findings.append(
+                (copy.supersedes, SealFinding(SEAL_NAME, f"the copy was sealed anew after {name} was issued"))
+            )
     return tuple(findings)
 
 

@@ -41,7 +41,7 @@ WITHOUT_FORM = (PREPARED, APPROVED)
 
 @dataclass(frozen=True, slots=True)
 class Work:
-    """A calculation file at hand: its path, the name it is called by, the folder of its book's records, its solution."""
+    """A calculation file at hand: its path, the name it is called by, the folder of records, its solution."""
 
     path: Path
     name: str
@@ -79,8 +79,14 @@ def sign(work: Work, role: str, person: str, date: datetime.date, blind: bool = 
     calculation = work.solved.chain.calculation
     settings = calculation.settings
     if role not in settings.roles:
-        raise _fault("role-unknown", work.place, f"the book has no role `{shown(role)}`", shown(role),
-                     ", ".join(settings.roles), nearest_names(role, settings.roles))
+        raise _fault(
+            "role-unknown",
+            work.place,
+            f"the book has no role `{shown(role)}`",
+            shown(role),
+            ", ".join(settings.roles),
+            nearest_names(role, settings.roles),
+        )
     signer = wanted_person(settings, person, work.place)
     lifecycle = lifecycle_of(work.path, work.solved, work.output)
     refuse_closed(work, lifecycle)
@@ -103,21 +109,34 @@ def parsed_date(text: str | None, place: Place) -> datetime.date:
     try:
         date = datetime.datetime.strptime(text, "%Y-%m-%d").date()
     except ValueError:
-        raise _fault("date-unreadable", place, "this is no date of the calendar", shown(text), "YYYY-MM-DD") from None
+        raise _fault(
+            "date-unreadable", place, "this is no date of the calendar", shown(text), "YYYY-MM-DD"
+        ) from None
     if date > now:
-        raise _fault("date-in-future", place, f"the date {date.isoformat()} lies in the future", date.isoformat(),
-                     "today or a day before")
+        raise _fault(
+            "date-in-future",
+            place,
+            f"the date {date.isoformat()} lies in the future",
+            date.isoformat(),
+            "today or a day before",
+        )
     return date
 
 
 def refuse_closed(work: Work, lifecycle: Lifecycle) -> None:
     """Refuse a calculation that is void, and a revision that is issued already."""
     if lifecycle.state == VOID:
-        raise _fault("calculation-void", work.place, f"{lifecycle.number} is void", "", "a new number for new work")
+        raise _fault(
+            "calculation-void", work.place, f"{lifecycle.number} is void", "", "a new number for new work"
+        )
     if lifecycle.current is not None:
-        raise _fault("revision-issued", work.place,
-                     f"revision {lifecycle.current.revision} of {lifecycle.number} is issued already", "",
-                     "the next revision: calcbook revise")
+        raise _fault(
+            "revision-issued",
+            work.place,
+            f"revision {lifecycle.current.revision} of {lifecycle.number} is issued already",
+            "",
+            "the next revision: calcbook revise",
+        )
 
 
 def _check_person(work: Work, role: str, signer: str) -> None:
@@ -126,17 +145,32 @@ def _check_person(work: Work, role: str, signer: str) -> None:
     place = head_place(work, "prepared by")
     if not preparer:
         people = calculation.settings.people
-        raise _fault("preparer-unknown", place, f"the book lists no person `{shown(calculation.prepared_by)}`",
-                     shown(calculation.prepared_by), "a name or other spelling of book.yaml",
-                     nearest_names(calculation.prepared_by, [text for names in people.values() for text in names]))
+        raise _fault(
+            "preparer-unknown",
+            place,
+            f"the book lists no person `{shown(calculation.prepared_by)}`",
+            shown(calculation.prepared_by),
+            "a name or other spelling of book.yaml",
+            nearest_names(calculation.prepared_by, [text for names in people.values() for text in names]),
+        )
     is_preparer = is_same_person(calculation.settings, signer, preparer)
     name = printed_name(calculation.settings, signer)
     if role == PREPARED and not is_preparer:
-        raise _fault("preparer-differs", place, f"{name} signs as prepared what {calculation.prepared_by} prepared", name,
-                     calculation.prepared_by)
+        raise _fault(
+            "preparer-differs",
+            place,
+            f"{name} signs as prepared what {calculation.prepared_by} prepared",
+            name,
+            calculation.prepared_by,
+        )
     if role != PREPARED and is_preparer:
-        raise _fault("preparer-signs", place, f"{name} prepared this calculation and cannot sign it as {role}", name,
-                     "another person of the book")
+        raise _fault(
+            "preparer-signs",
+            place,
+            f"{name} prepared this calculation and cannot sign it as {role}",
+            name,
+            "another person of the book",
+        )
 
 
 def head_place(work: Work, key: str) -> Place:
@@ -150,20 +184,40 @@ def head_place(work: Work, key: str) -> Place:
 def _check_order(work: Work, role: str, date: datetime.date, lifecycle: Lifecycle) -> None:
     calculation = work.solved.chain.calculation
     if date > today():
-        raise _fault("date-in-future", work.place, f"the date {date.isoformat()} lies in the future", date.isoformat(),
-                     "today or a day before")
+        raise _fault(
+            "date-in-future",
+            work.place,
+            f"the date {date.isoformat()} lies in the future",
+            date.isoformat(),
+            "today or a day before",
+        )
     if date.isoformat() < calculation.date:
-        raise _fault("date-order", head_place(work, "date"), f"a sign-off of {date.isoformat()} is older than the file",
-                     date.isoformat(), f"{calculation.date} or later")
+        raise _fault(
+            "date-order",
+            head_place(work, "date"),
+            f"a sign-off of {date.isoformat()} is older than the file",
+            date.isoformat(),
+            f"{calculation.date} or later",
+        )
     for item in _before(lifecycle, role):
         if item.validity != VALID:
             why = f": {'; '.join(item.why)}" if item.why else ""
-            raise _fault("sign-off-order", work.place, f"{role} rests on {item.role}, which is {item.validity}{why}", "",
-                         f"the sign-off {item.role} first")
+            raise _fault(
+                "sign-off-order",
+                work.place,
+                f"{role} rests on {item.role}, which is {item.validity}{why}",
+                "",
+                f"the sign-off {item.role} first",
+            )
         assert item.signoff is not None
         if date.isoformat() < item.signoff.date:
-            raise _fault("date-order", work.place, f"{role} on {date.isoformat()} lies before {item.role}",
-                         date.isoformat(), f"{item.signoff.date} or later")
+            raise _fault(
+                "date-order",
+                work.place,
+                f"{role} on {date.isoformat()} lies before {item.role}",
+                date.isoformat(),
+                f"{item.signoff.date} or later",
+            )
 
 
 def _before(lifecycle: Lifecycle, role: str) -> list[Judged]:
@@ -176,20 +230,38 @@ def _before(lifecycle: Lifecycle, role: str) -> list[Judged]:
 
 def _blind_step(work: Work, role: str, signer: str, date: datetime.date, lifecycle: Lifecycle) -> Step:
     if role in WITHOUT_FORM:
-        raise _fault("blind-too-late", work.place, f"hand values belong to a checker, not to {role}", "", "another role")
+        raise _fault(
+            "blind-too-late",
+            work.place,
+            f"hand values belong to a checker, not to {role}",
+            "",
+            "another role",
+        )
     kept = read_signoffs(signoffs_path(work.path))
     own = next(item for item in lifecycle.signoffs if item.role == role)
-    if forms.form_path(work.path, role).is_file() or own.signoff is not None or _stored(kept, work, role, signer):
-        raise _fault("blind-too-late", work.place, "hand values are stored once, and before the form is written", "",
-                     f"a sign-off {role} with what is stored, or without hand values")
+    if (
+        forms.form_path(work.path, role).is_file()
+        or own.signoff is not None
+        or _stored(kept, work, role, signer)
+    ):
+        raise _fault(
+            "blind-too-late",
+            work.place,
+            "hand values are stored once, and before the form is written",
+            "",
+            f"a sign-off {role} with what is stored, or without hand values",
+        )
     form = forms.form_path(work.path, role, blind=True)
     if not form.is_file():
         write_whole(form, forms.blind_form_text(work.solved, role, signer))
         return Step(FORM_WRITTEN, form)
     calculation = work.solved.chain.calculation
     values = forms.read_blind_form(form, work.solved, role, signer)
-    entry = bound_values(HandValues(role, signer, date.isoformat(), calculation.revision,
-                                    digest_of(work.solved).meaning, values))
+    entry = bound_values(
+        HandValues(
+            role, signer, date.isoformat(), calculation.revision, digest_of(work.solved).meaning, values
+        )
+    )
     path = signoffs_path(work.path)
     write_signoffs(path, replace(kept, hand_values=(*kept.hand_values, entry)))
     form.unlink(missing_ok=True)
@@ -198,8 +270,14 @@ def _blind_step(work: Work, role: str, signer: str, date: datetime.date, lifecyc
 
 def _stored(kept: SignOffFile, work: Work, role: str, signer: str) -> HandValues | None:
     revision = work.solved.chain.calculation.revision
-    return next((entry for entry in kept.hand_values
-                 if (entry.role, entry.person, entry.revision) == (role, signer, revision)), None)
+    return next(
+        (
+            entry
+            for entry in kept.hand_values
+            if (entry.role, entry.person, entry.revision) == (role, signer, revision)
+        ),
+        None,
+    )
 
 
 # --- the sign-off -----------------------------------------------------------------------------------
@@ -209,14 +287,26 @@ def _take(work: Work, role: str, signer: str, date: datetime.date) -> Step:
     calculation = work.solved.chain.calculation
     path = signoffs_path(work.path)
     kept = read_signoffs(path)
-    entry = SignOff(role, signer, printed_name(calculation.settings, signer), date.isoformat(), calculation.revision,
-                    content_of(work.solved))
+    entry = SignOff(
+        role,
+        signer,
+        printed_name(calculation.settings, signer),
+        date.isoformat(),
+        calculation.revision,
+        content_of(work.solved),
+    )
     if role not in WITHOUT_FORM:
         entry = _with_form(entry, work, kept)
-    others = [other for other in kept.signoffs if other.role != role and other.revision == calculation.revision]
+    others = [
+        other for other in kept.signoffs if other.role != role and other.revision == calculation.revision
+    ]
     roles = list(calculation.settings.roles)
-    ordered = sorted([*others, bound(entry)], key=lambda item: roles.index(item.role) if item.role in roles else len(roles))
-    values = tuple(item for item in kept.hand_values if item.revision == calculation.revision and item.role != role)
+    ordered = sorted(
+        [*others, bound(entry)], key=lambda item: roles.index(item.role) if item.role in roles else len(roles)
+    )
+    values = tuple(
+        item for item in kept.hand_values if item.revision == calculation.revision and item.role != role
+    )
     write_signoffs(path, replace(kept, signoffs=tuple(ordered), hand_values=values))
     write_record(work)
     if role not in WITHOUT_FORM:
@@ -230,8 +320,14 @@ def _with_form(entry: SignOff, work: Work, kept: SignOffFile) -> SignOff:
     filled = forms.read_form(form, work.solved, entry.role, entry.person, record_text(work.solved))
     stored = _stored(kept, work, entry.role, entry.person)
     blind = replace(stored, values=forms.revealed(stored, work.solved)) if stored is not None else None
-    return replace(entry, way=filled.way, checked_with=filled.checked_with, answers=filled.answers,
-                   acknowledged=filled.acknowledged, blind=blind)
+    return replace(
+        entry,
+        way=filled.way,
+        checked_with=filled.checked_with,
+        answers=filled.answers,
+        acknowledged=filled.acknowledged,
+        blind=blind,
+    )
 
 
 def write_record(work: Work) -> None:
@@ -254,15 +350,27 @@ def declare_void(work: Work, person: str, date: datetime.date, because: str) -> 
     path = signoffs_path(work.path)
     kept = read_signoffs(path)
     if kept.void is not None:
-        raise _fault("calculation-void", work.place, f"{calculation.number} is void already", kept.void.date,
-                     "nothing more")
+        raise _fault(
+            "calculation-void",
+            work.place,
+            f"{calculation.number} is void already",
+            kept.void.date,
+            "nothing more",
+        )
     if len(forms.own_words(because)) < forms.FEWEST_WORDS:
-        raise _fault("answer-bare", work.place, "the reason is no sentence", shown(because),
-                     "why it is void and what replaces it")
+        raise _fault(
+            "answer-bare",
+            work.place,
+            "the reason is no sentence",
+            shown(because),
+            "why it is void and what replaces it",
+        )
     write_signoffs(path, replace(kept, void=Voiding(signer, date.isoformat(), visible(because))))
     write_record(work)
     return Step(VOID, path)
 
 
-def _fault(code: str, place: Place, message: str, found: str, expected: str, nearest: tuple[str, ...] = ()) -> Faults:
+def _fault(
+    code: str, place: Place, message: str, found: str, expected: str, nearest: tuple[str, ...] = ()
+) -> Faults:
     return Faults([Fault(code, place, message, found, expected, nearest)])

@@ -1,4 +1,4 @@
-"""Sign-offs: who signed what, when and how, in a file beside the calculation, bound to the content that was signed."""
+"""Sign-offs: who signed what, when and how, beside the calculation and bound to what was signed."""
 
 from __future__ import annotations
 
@@ -13,8 +13,8 @@ from pathlib import Path
 
 from calcbook.calcfile import Settings
 from calcbook.chain.outcome import Solved
-from calcbook.documents import Node, Scalar, Sequence, read_file
 from calcbook.documents import Mapping as MappingNode
+from calcbook.documents import Node, Scalar, Sequence, read_file
 from calcbook.faults import Fault, Faults, Place, nearest_names, shown
 from calcbook.files import write_whole
 from calcbook.record.digest import Digest, digest_of, displayed
@@ -27,8 +27,8 @@ NAMED_CHANGES = 6
 HEADLINES = ("U_service", "U_clean")
 HEAD = """\
 # Sign-offs of a calculation, written by calcbook. They stand beside the file, so that signing changes nothing
-# that is signed. Each is bound to the meaning of the file, the cards used and the displayed results; `bound` shows
-# that nobody altered the entry. The program shows neither identity nor competence.
+# that is signed. Each is bound to the meaning of the file, the cards used and the displayed results; `bound`
+# shows that nobody altered the entry. The program shows neither identity nor competence.
 """
 
 Data = dict[str, object]
@@ -44,10 +44,10 @@ def today() -> datetime.date:
 
 @dataclass(frozen=True, slots=True)
 class Content:
-    """What a sign-off is bound to: the digests, the software, and a mark of each part so that changes can be named.
+    """What a sign-off is bound to: the digests, the software, and marks of the parts, to name what changed.
 
-    ``meaning``, ``cards`` and ``results`` hold short digests by the name of a part; ``headlines`` the displayed
-    overall coefficients.
+    ``meaning``, ``cards`` and ``results`` hold short digests by the name of a part; ``headlines`` the
+    displayed overall coefficients.
     """
 
     digest: Digest
@@ -88,7 +88,11 @@ def _parts(meaning: object, prefix: str) -> dict[str, str]:
             found |= {f"{prefix}{key} / {name}": _mark(part) for name, part in value.items()}
         elif isinstance(value, list):
             for place, item in enumerate(value, 1):
-                own = item.get("name") or item.get("check") or item.get("revision") if isinstance(item, dict) else None
+                own = (
+                    item.get("name") or item.get("check") or item.get("revision")
+                    if isinstance(item, dict)
+                    else None
+                )
                 found[f"{prefix}{key} / {own if isinstance(own, str) else place}"] = _mark([place, item])
         else:
             found[f"{prefix}{key}"] = _mark(value)
@@ -96,7 +100,7 @@ def _parts(meaning: object, prefix: str) -> dict[str, str]:
 
 
 def _grouped(results: Mapping[str, list[str]]) -> dict[str, str]:
-    """Marks of the displayed results by term: `step tube wall`, `result`, `check tube wall`, with the case before."""
+    """Marks of the displayed results by kind and term, such as `step tube wall`, with the case before."""
     groups: dict[str, list[object]] = {}
     for name, text in sorted(results.items()):
         groups.setdefault(_group(name), []).append([name, text])
@@ -131,17 +135,28 @@ def changed_since(then: Content, now: Content) -> tuple[str, ...]:
 
 
 def _results_changed(then: Content, now: Content) -> str:
-    moved = [f"{name} {then.headlines[name]} then, {text} now" for name, text in now.headlines.items()
-             if name in then.headlines and then.headlines[name] != text]
+    moved = [
+        f"{name} {then.headlines[name]} then, {text} now"
+        for name, text in now.headlines.items()
+        if name in then.headlines and then.headlines[name] != text
+    ]
     return "; ".join(moved) if moved else _differences(then.results, now.results)
 
 
 def _differences(then: Mapping[str, str], now: Mapping[str, str]) -> str:
-    names = [name for name in then if now.get(name, "") != then[name]] + [name for name in now if name not in then]
-    named = [f"{name}{'' if name in now and name in then else ' added' if name in now else ' removed'}"
-             for name in names[:NAMED_CHANGES]]
+    names = [name for name in then if now.get(name, "") != then[name]] + [
+        name for name in now if name not in then
+    ]
+    named = [
+        f"{name}{'' if name in now and name in then else ' added' if name in now else ' removed'}"
+        for name in names[:NAMED_CHANGES]
+    ]
     more = len(names) - len(named)
-    return ", ".join(named) + (f" and {more} more" if more > 0 else "") if named else "in its order or layout of parts"
+    return (
+        ", ".join(named) + (f" and {more} more" if more > 0 else "")
+        if named
+        else "in its order or layout of parts"
+    )
 
 
 def _software_step(then: Software, now: Software) -> str:
@@ -282,7 +297,9 @@ def person_id(settings: Settings, text: str) -> str:
     if text in settings.people:
         return text
     wanted = spelled(text)
-    return next((person for person in settings.people if wanted and wanted in _spellings(settings, person)), "")
+    return next(
+        (person for person in settings.people if wanted and wanted in _spellings(settings, person)), ""
+    )
 
 
 def is_same_person(settings: Settings, one: str, other: str) -> bool:
@@ -298,9 +315,20 @@ def wanted_person(settings: Settings, text: str, place: Place) -> str:
     found = person_id(settings, text)
     if not found:
         names = tuple(settings.people)
-        raise Faults([Fault("person-unknown", place, f"the book lists no person `{shown(text)}`", shown(text),
-                            f"one of the people of book.yaml: {', '.join(names)}" if names else
-                            "a book.yaml with `people:` beside the calculation file", nearest_names(text, names))])
+        raise Faults(
+            [
+                Fault(
+                    "person-unknown",
+                    place,
+                    f"the book lists no person `{shown(text)}`",
+                    shown(text),
+                    f"one of the people of book.yaml: {', '.join(names)}"
+                    if names
+                    else "a book.yaml with `people:` beside the calculation file",
+                    nearest_names(text, names),
+                )
+            ]
+        )
     return found
 
 
@@ -346,7 +374,11 @@ def signoffs_text(content: SignOffFile) -> str:
     if content.hand_values:
         data["hand values"] = [{**_hand_data(entry), "bound": entry.bound} for entry in content.hand_values]
     if content.void is not None:
-        data["void"] = {"person": content.void.person, "date": content.void.date, "because": content.void.because}
+        data["void"] = {
+            "person": content.void.person,
+            "date": content.void.date,
+            "because": content.void.because,
+        }
     return HEAD + "\n".join(yaml_lines(data)) + "\n"
 
 
@@ -358,17 +390,24 @@ def _signoff_data(entry: SignOff) -> Data:
         "date": entry.date,
         "revision": entry.revision,
         "digest": {part: getattr(entry.content.digest, part) for part in PARTS},
-        "software": {"calcbook": entry.content.software.calcbook, "CoolProp": entry.content.software.coolprop},
+        "software": {
+            "calcbook": entry.content.software.calcbook,
+            "CoolProp": entry.content.software.coolprop,
+        },
     }
     if entry.way:
         data["way of checking"] = entry.way
     if entry.checked_with:
         data["checked with"] = entry.checked_with
     if entry.answers:
-        data["answers"] = [{"number": item.number, "question": item.question, "answer": item.answer}
-                           for item in entry.answers]
+        data["answers"] = [
+            {"number": item.number, "question": item.question, "answer": item.answer}
+            for item in entry.answers
+        ]
     if entry.acknowledged:
-        data["acknowledged"] = [{"id": item.id, "text": item.text, "words": item.words} for item in entry.acknowledged]
+        data["acknowledged"] = [
+            {"id": item.id, "text": item.text, "words": item.words} for item in entry.acknowledged
+        ]
     if entry.blind is not None:
         data["blind"] = {**_hand_data(entry.blind), "bound": entry.blind.bound}
     data["signed content"] = {
@@ -383,12 +422,18 @@ def _hand_data(entry: HandValues) -> Data:
     for item in entry.values:
         revealed = {"in the record": item.shown, "deviation": item.deviation} if item.shown else {}
         values.append({"result": item.result, "by hand": item.value, **revealed})
-    return {"role": entry.role, "person": entry.person, "date": entry.date, "revision": entry.revision,
-            "digest": entry.digest, "values": values}
+    return {
+        "role": entry.role,
+        "person": entry.person,
+        "date": entry.date,
+        "revision": entry.revision,
+        "digest": entry.digest,
+        "values": values,
+    }
 
 
 class _Reader:
-    """Turns the tree of a file of sign-offs into its types; a part that is missing is a fault at its entry."""
+    """Turns the tree of a file of sign-offs into its types; a missing part is a fault at its entry."""
 
     def __init__(self, place: Place):
         self.place = place
@@ -424,14 +469,22 @@ class _Reader:
     def signoff(self, node: Node) -> SignOff:
         blind = self.part(node, "blind")
         return SignOff(
-            *(self.text(node, key) for key in ("role", "person", "name", "date", "revision")),
+            role=self.text(node, "role"),
+            person=self.text(node, "person"),
+            name=self.text(node, "name"),
+            date=self.text(node, "date"),
+            revision=self.text(node, "revision"),
             content=self.content(node),
             way=self.text(node, "way of checking", required=False),
             checked_with=self.text(node, "checked with", required=False),
-            answers=tuple(Answer(*(self.text(item, key) for key in ("number", "question", "answer")))
-                          for item in self.items(node, "answers")),
-            acknowledged=tuple(Acknowledged(*(self.text(item, key) for key in ("id", "text", "words")))
-                               for item in self.items(node, "acknowledged")),
+            answers=tuple(
+                Answer(*(self.text(item, key) for key in ("number", "question", "answer")))
+                for item in self.items(node, "answers")
+            ),
+            acknowledged=tuple(
+                Acknowledged(*(self.text(item, key) for key in ("id", "text", "words")))
+                for item in self.items(node, "acknowledged")
+            ),
             blind=self.hand_values(blind) if blind is not None else None,
             bound=self.text(node, "bound", required=False),
         )
@@ -442,31 +495,62 @@ class _Reader:
         made_with = self.part(node, "software")
         software = Software(self.text(made_with, "calcbook"), self.text(made_with, "CoolProp"), cards)
         signed = self.part(node, "signed content")
-        return Content(Digest("", meaning, cards, results), software,
-                       *(self.mapping(signed, part) for part in PARTS), self.mapping(signed, "displayed"))
+        return Content(
+            Digest("", meaning, cards, results),
+            software,
+            meaning=self.mapping(signed, "meaning"),
+            cards=self.mapping(signed, "cards"),
+            results=self.mapping(signed, "results"),
+            headlines=self.mapping(signed, "displayed"),
+        )
 
     def hand_values(self, node: Node) -> HandValues:
         values = tuple(
-            HandValue(self.text(item, "result"), self.text(item, "by hand"),
-                      self.text(item, "in the record", required=False), self.text(item, "deviation", required=False))
-            for item in self.items(node, "values"))
-        return HandValues(*(self.text(node, key) for key in ("role", "person", "date", "revision", "digest")),
-                          values=values, bound=self.text(node, "bound", required=False))
+            HandValue(
+                self.text(item, "result"),
+                self.text(item, "by hand"),
+                self.text(item, "in the record", required=False),
+                self.text(item, "deviation", required=False),
+            )
+            for item in self.items(node, "values")
+        )
+        return HandValues(
+            role=self.text(node, "role"),
+            person=self.text(node, "person"),
+            date=self.text(node, "date"),
+            revision=self.text(node, "revision"),
+            digest=self.text(node, "digest"),
+            values=values,
+            bound=self.text(node, "bound", required=False),
+        )
 
     def voiding(self, node: Node | None) -> Voiding | None:
-        return Voiding(*(self.text(node, key) for key in ("person", "date", "because"))) if node is not None else None
+        return (
+            Voiding(*(self.text(node, key) for key in ("person", "date", "because")))
+            if node is not None
+            else None
+        )
 
 
 def _unreadable(place: Place, expected: str) -> Faults:
-    return Faults([Fault("sign-offs-unreadable", place, "this is not what calcbook wrote here", "",
-                         f"{expected}; take the file back from the last commit, or sign again")])
+    return Faults(
+        [
+            Fault(
+                "sign-offs-unreadable",
+                place,
+                "this is not what calcbook wrote here",
+                "",
+                f"{expected}; take the file back from the last commit, or sign again",
+            )
+        ]
+    )
 
 
 # --- writing YAML -----------------------------------------------------------------------------------
 
 
 def quoted(text: str) -> str:
-    """A text in double quotes that YAML reads back as it was; what cannot be seen is written by its number."""
+    """A text in double quotes that YAML reads back as it was; what is not seen is written by its number."""
     return '"' + "".join(_quoted_character(character) for character in text) + '"'
 
 

@@ -1,4 +1,4 @@
-"""A small book for the tests of sign-off and issue: one calculation without open items, and the way to its end."""
+"""A small book for the tests of sign-off and issue: one calculation without open items, and its way."""
 
 from __future__ import annotations
 
@@ -50,7 +50,8 @@ givens:
   h_o:    {value: 5200 W/(m^2 K),  is: shell-side film coefficient, source: vendor data sheet p. 3}
 
 streams:
-  hot: {fluid: water, temperature: T_hot, pressure: {value: 4 bara, source: heat balance sheet 12}, flow: m_hot}
+  hot:
+    {fluid: water, temperature: T_hot, pressure: {value: 4 bara, source: heat balance sheet 12}, flow: m_hot}
 
 geometry: {shape: tube, inside diameter: d_i, outside diameter: d_o, length: L, parallel: N}
 
@@ -91,7 +92,9 @@ def work_of(path: Path) -> Work:
 def fill(form: Path, answer: str = ANSWER, way: str = "review of every line") -> None:
     """Fill in a checker's form as a careful person would."""
     text = form.read_text(encoding="utf-8")
-    text = text.replace('answer: ""', f'answer: "{answer}"').replace('acknowledged: ""', 'acknowledged: "acknowledged"')
+    text = text.replace('answer: ""', f'answer: "{answer}"').replace(
+        'acknowledged: ""', 'acknowledged: "acknowledged"'
+    )
     form.write_text(text.replace('way of checking: ""', f'way of checking: "{way}"'), encoding="utf-8")
 
 

@@ -10,13 +10,13 @@ import numpy as np
 import pytest
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
+from two_sides import STATED, example, example_side, side_of, with_value
 
 from calcbook.record import markdown
 from calcbook.revisions import attribution as module
 from calcbook.revisions.attribution import Attribution, exact_shares
 from calcbook.revisions.comparison import compare, comparison_blocks
 from calcbook.revisions.sides import Side
-from two_sides import STATED, example, example_side, side_of, with_value
 
 FOULED = with_value(STATED, "R_fi", "3.5e-4 m^2 K/W")
 FOULED_AND_SLOW = with_value(FOULED, "h_o", "1200 W/(m^2 K)")
@@ -211,7 +211,7 @@ def stated_files(draw: st.DrawFn) -> str:
     return text
 
 
-SLOW = settings(max_examples=25, deadline=None, suppress_health_check=[HealthCheck.too_slow])
+SLOW = settings(max_examples=15, deadline=None, suppress_health_check=[HealthCheck.too_slow])
 
 
 @SLOW

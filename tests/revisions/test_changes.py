@@ -6,6 +6,7 @@ import re
 from pathlib import Path
 
 import pytest
+from two_sides import EXAMPLES, STATED, example, example_side, side_of, with_value
 
 from calcbook.chain.types import Chain, Group, Layer
 from calcbook.documents import read_text
@@ -13,7 +14,6 @@ from calcbook.revisions.changes import Change, changes_between, entries_of, merg
 from calcbook.revisions.comparison import compare
 from calcbook.revisions.mixtures import woven
 from calcbook.revisions.sides import Side, load_side
-from two_sides import EXAMPLES, STATED, example, example_side, side_of, with_value
 
 
 def changes(old: str, new: str) -> tuple[Change, ...]:

@@ -9,6 +9,7 @@ import re
 
 import pytest
 from markdown_it import MarkdownIt
+from two_sides import STATED, example, example_side, side_of, with_value
 
 from calcbook.faults import Faults
 from calcbook.record import markdown
@@ -21,7 +22,6 @@ from calcbook.revisions.comparison import (
     short_blocks,
 )
 from calcbook.revisions.comparison_page import relative_text
-from two_sides import STATED, example, example_side, side_of, with_value
 
 FOULED = with_value(STATED, "R_fi", "3.5e-4 m^2 K/W")
 

@@ -9,6 +9,7 @@ from collections.abc import Callable
 from pathlib import Path
 
 import pytest
+from signed_book import BOOK, CALCULATION, change, day, make_book, sign_all, sign_prepared, work_of
 
 from calcbook.faults import Faults
 from calcbook.interface import solve_file
@@ -19,7 +20,6 @@ from calcbook.revisions.revising import revise
 from calcbook.revisions.seals import Issued, check_seals, issued_copies, read_seal, revision_order, seal_text
 from calcbook.revisions.signing import sign
 from calcbook.revisions.signoffs import signoffs_path
-from signed_book import BOOK, CALCULATION, change, day, make_book, sign_all, sign_prepared, work_of
 
 
 @pytest.fixture(scope="module")
@@ -78,20 +78,26 @@ def test_an_open_item_blocks_final_issue_and_lets_a_preliminary_one_pass(tmp_pat
     assert (made.kind, check_seal(made.folder)) == ("preliminary", ())
     record = (made.folder / "record.md").read_text(encoding="utf-8")
     assert record.split("\n")[2] == (
-        "> Preliminary issue with 1 open item: not for purchase, fabrication or decisions on safety.")
+        "> Preliminary issue with 1 open item: not for purchase, fabrication or decisions on safety."
+    )
 
 
 def test_a_book_can_refuse_any_issue_with_open_items(tmp_path: Path) -> None:
-    path = make_book(tmp_path, CALCULATION.replace("source: vendor data sheet p. 3", "source: tbd"),
-                     BOOK.replace("refuse final issue", "refuse any issue"))
+    path = make_book(
+        tmp_path,
+        CALCULATION.replace("source: vendor data sheet p. 3", "source: tbd"),
+        BOOK.replace("refuse final issue", "refuse any issue"),
+    )
     sign_all(path)
     assert codes(lambda: issue(work_of(path), day("2026-09-05"), preliminary=True)) == ["issue-open-item"]
 
 
 def test_a_preliminary_issue_needs_its_preparer_and_a_written_reason(tmp_path: Path) -> None:
     path = make_book(tmp_path, CALCULATION.replace("reason: First issue", "reason: to be written"))
-    assert codes(lambda: issue(work_of(path), day("2026-09-05"), preliminary=True)) == ["issue-open-item",
-                                                                                       "issue-sign-off"]
+    assert codes(lambda: issue(work_of(path), day("2026-09-05"), preliminary=True)) == [
+        "issue-open-item",
+        "issue-sign-off",
+    ]
 
 
 @pytest.mark.parametrize("preliminary", [False, True])
@@ -155,21 +161,39 @@ def test_the_copy_holds_the_files_byte_for_byte_and_its_digests(issued: Path) ->
     calcs = issued.parents[3] / "calcs"
     output = issued.parents[1]
     assert {file.name for file in issued.iterdir()} == {
-        "calculation.yaml", "book.yaml", "record.md", "results.json", "signoffs.yaml", "seal.json"}
-    for name, original in (("calculation.yaml", calcs / "wc-101.yaml"), ("book.yaml", calcs / "book.yaml"),
-                           ("signoffs.yaml", signoffs_path(calcs / "wc-101.yaml")), ("record.md", output / "record.md"),
-                           ("results.json", output / "results.json")):
+        "calculation.yaml",
+        "book.yaml",
+        "record.md",
+        "results.json",
+        "signoffs.yaml",
+        "seal.json",
+    }
+    for name, original in (
+        ("calculation.yaml", calcs / "wc-101.yaml"),
+        ("book.yaml", calcs / "book.yaml"),
+        ("signoffs.yaml", signoffs_path(calcs / "wc-101.yaml")),
+        ("record.md", output / "record.md"),
+        ("results.json", output / "results.json"),
+    ):
         assert (issued / name).read_bytes() == original.read_bytes()
     seal = json.loads((issued / "seal.json").read_text(encoding="utf-8"))
-    assert (seal["seal"], seal["number"], seal["revision"], seal["kind"], seal["date"], seal["supersedes"]) == (
-        "calcbook-seal-1", "WC-101", "A", "final", "2026-09-05", "")
+    assert (
+        seal["seal"],
+        seal["number"],
+        seal["revision"],
+        seal["kind"],
+        seal["date"],
+        seal["supersedes"],
+    ) == ("calcbook-seal-1", "WC-101", "A", "final", "2026-09-05", "")
     for name, digest in seal["files"].items():
         assert hashlib.sha256((issued / name).read_bytes()).hexdigest() == digest
     digest = digest_of(work_of(calcs / "wc-101.yaml").solved)
     assert seal["digest"] == {"meaning": digest.meaning, "cards": digest.cards, "results": digest.results}
     assert seal["software"]["calcbook"] and seal["software"]["CoolProp"]
     assert "| State | issued |" in (issued / "record.md").read_text(encoding="utf-8")
-    assert "| Issue | final issue of revision A on 2026-09-05 |" in (issued / "record.md").read_text(encoding="utf-8")
+    assert "| Issue | final issue of revision A on 2026-09-05 |" in (issued / "record.md").read_text(
+        encoding="utf-8"
+    )
 
 
 def test_house_cards_and_table_files_go_into_the_copy_which_solves_by_itself(tmp_path: Path) -> None:
@@ -177,15 +201,19 @@ def test_house_cards_and_table_files_go_into_the_copy_which_solves_by_itself(tmp
 
     card = (ROOT / "materials" / "stainless-316-kaschnitz-2017.yaml").read_text(encoding="utf-8")
     calculation = CALCULATION.replace("stainless-316-kaschnitz-2017", "house-steel").replace(
-        "fluid: water, ", "fluid: {table file: oil.csv, source: supplier's sheet}, ")
+        "fluid: water, ", "fluid: {table file: oil.csv, source: supplier's sheet}, "
+    )
     path = make_book(tmp_path, calculation)
     (path.parent / "cards").mkdir()
     (path.parent / "cards" / "house-steel.yaml").write_text(
-        card.replace("material: stainless-316-kaschnitz-2017", "material: house-steel"), encoding="utf-8")
+        card.replace("material: stainless-316-kaschnitz-2017", "material: house-steel"), encoding="utf-8"
+    )
     (path.parent / "cards" / "not-used.yaml").write_text("nothing: here\n", encoding="utf-8")
     (path.parent / "oil.csv").write_text(
         "T,density,viscosity,conductivity,heat capacity\ndegC,kg/m^3,mPa s,W/(m K),kJ/(kg K)\n"
-        "20,1000,1.0,0.60,4.18\n50,990,0.55,0.64,4.18\n100,960,0.28,0.68,4.2\n", encoding="utf-8")
+        "20,1000,1.0,0.60,4.18\n50,990,0.55,0.64,4.18\n100,960,0.28,0.68,4.2\n",
+        encoding="utf-8",
+    )
     sign_prepared(path)
     made = issue(work_of(path), day("2026-09-05"), preliminary=True)
     names = {file.relative_to(made.folder).as_posix() for file in made.folder.rglob("*") if file.is_file()}
@@ -227,14 +255,17 @@ def test_a_copy_as_it_was_issued_has_no_finding(copy: Path) -> None:
     assert check_seal(copy) == ()
 
 
-@pytest.mark.parametrize("name", ["calculation.yaml", "book.yaml", "record.md", "results.json", "signoffs.yaml"])
+@pytest.mark.parametrize(
+    "name", ["calculation.yaml", "book.yaml", "record.md", "results.json", "signoffs.yaml"]
+)
 def test_one_altered_character_is_found_anywhere_in_a_file(copy: Path, name: str) -> None:
     data = (copy / name).read_bytes()
     for place in [*range(0, len(data), 997), len(data) - 1]:
         altered = data[:place] + bytes([data[place] ^ 1]) + data[place + 1 :]
         (copy / name).write_bytes(altered)
         assert [(finding.file, finding.text) for finding in check_seal(copy)] == [
-            (name, "the file was altered after the issue")]
+            (name, "the file was altered after the issue")
+        ]
     (copy / name).write_bytes(data)
     assert check_seal(copy) == ()
 
@@ -250,7 +281,9 @@ def test_files_that_are_missing_added_or_moved_are_found(copy: Path) -> None:
     (copy / "note.txt").write_text("a note", encoding="utf-8")
     (copy / "record.md").unlink()
     assert {(finding.file, finding.text) for finding in check_seal(copy)} == {
-        ("note.txt", "the file was added after the issue"), ("record.md", "the file is missing")}
+        ("note.txt", "the file was added after the issue"),
+        ("record.md", "the file is missing"),
+    }
     moved = copy.rename(copy.with_name("B"))
     assert any("the folder of B" in finding.text for finding in check_seal(moved))
     (moved / "seal.json").unlink()
@@ -266,7 +299,18 @@ def test_a_copy_that_was_sealed_anew_shows_against_its_successor(tmp_path: Path)
     record.write_text(record.read_text(encoding="utf-8") + "More.\n", encoding="utf-8")
     seal = read_seal(first.folder)
     files = {**seal.files, "record.md": hashlib.sha256(record.read_bytes()).hexdigest()}
-    forged = Issued(seal.folder, seal.number, seal.revision, seal.kind, seal.date, "", "", seal.digest, seal.software, files)
+    forged = Issued(
+        seal.folder,
+        seal.number,
+        seal.revision,
+        seal.kind,
+        seal.date,
+        "",
+        "",
+        seal.digest,
+        seal.software,
+        files,
+    )
     (first.folder / "seal.json").write_text(seal_text(forged), encoding="utf-8", newline="\n")
     assert check_seal(first.folder) == ()
     (finding,) = check_seals(path.parent.parent / "output", "WC-101")

@@ -1,4 +1,4 @@
-"""State, confirmation and validity: derived from evidence, and void as soon as what was signed has changed."""
+"""State, confirmation and validity: derived from evidence; void as soon as what was signed has changed."""
 
 from __future__ import annotations
 
@@ -8,18 +8,6 @@ from pathlib import Path
 
 import pytest
 from markdown_it import MarkdownIt
-
-from calcbook.calcfile.meaning import meaning_of
-from calcbook.chain.outcome import Solved
-from calcbook.documents import read_text
-from calcbook.faults import Faults
-from calcbook.record import digest_of, record_text
-from calcbook.record.life import Life
-from calcbook.revisions.issuing import issue
-from calcbook.revisions.lifecycle import Judged, Lifecycle, issued_state, life_of, lifecycle_of
-from calcbook.revisions.revising import revise
-from calcbook.revisions.signing import declare_void, sign
-from calcbook.revisions.signoffs import changed_since, content_of, read_signoffs, signoffs_path, signoffs_text
 from signed_book import (
     BOOK,
     CALCULATION,
@@ -32,6 +20,18 @@ from signed_book import (
     sign_prepared,
     work_of,
 )
+
+from calcbook.calcfile.meaning import meaning_of
+from calcbook.chain.outcome import Solved
+from calcbook.documents import read_text
+from calcbook.faults import Faults
+from calcbook.record import digest_of, record_text
+from calcbook.record.life import Life
+from calcbook.revisions.issuing import issue
+from calcbook.revisions.lifecycle import Judged, Lifecycle, issued_state, life_of, lifecycle_of
+from calcbook.revisions.revising import revise
+from calcbook.revisions.signing import declare_void, sign
+from calcbook.revisions.signoffs import changed_since, content_of, read_signoffs, signoffs_path, signoffs_text
 
 
 @pytest.fixture(scope="module")
@@ -89,7 +89,10 @@ def test_an_issue_is_superseded_by_the_next_and_its_copy_stays_as_it_is(path: Pa
     second = issue(work_of(path), day("2026-11-24"))
     now = life(path)
     assert (now.state, second.supersedes) == ("issued", "A")
-    assert [(copy.revision, issued_state(copy, now)) for copy in now.issued] == [("A", "superseded"), ("B", "issued")]
+    assert [(copy.revision, issued_state(copy, now)) for copy in now.issued] == [
+        ("A", "superseded"),
+        ("B", "issued"),
+    ]
     assert {file.name: file.read_bytes() for file in first.folder.iterdir()} == before
     assert now.last_before is not None
     assert now.last_before.revision == "A"
@@ -113,7 +116,8 @@ def test_an_issued_file_that_was_changed_is_no_longer_issued(path: Path) -> None
     assert (now.state, now.is_current) == ("in preparation", False)
     work = work_of(path)
     assert life_of(path, work.solved, work.output).issued == (
-        "final issue of revision A on 2026-09-05; the file has changed since and needs its next revision")
+        "final issue of revision A on 2026-09-05; the file has changed since and needs its next revision"
+    )
 
 
 def test_a_void_calculation_makes_its_issued_copies_void(path: Path) -> None:
@@ -142,7 +146,12 @@ def test_a_file_with_a_fault_keeps_its_issued_copies_and_judges_nothing(path: Pa
     issue(work_of(path), day("2026-09-05"))
     change(path, "value: 62,", "value: sixty,")
     now = lifecycle_of(path, None, path.parent.parent / "output")
-    assert (now.number, now.revision, now.state, now.confirmation) == ("WC-101", "A", "not known", "not known")
+    assert (now.number, now.revision, now.state, now.confirmation) == (
+        "WC-101",
+        "A",
+        "not known",
+        "not known",
+    )
     assert [copy.revision for copy in now.issued] == ["A"]
     assert now.signoffs == ()
 
@@ -218,16 +227,21 @@ def test_a_meaning_that_differs_voids_every_sign_off(signed: Path) -> None:
             assert changed_since(entry.content, content)[0].startswith("meaning changed: ")
 
 
-@pytest.mark.parametrize(("old", "new", "named"), [
-    ("value: 0.00018 m^2 K/W", "value: 0.00019 m^2 K/W", "givens / R_fo"),
-    ("title: Overall coefficient", "title: Overal coefficient", "calculation / title"),
-    ("source: flow meter FT-101", "source: flow meter FT-102", "givens / m_hot"),
-    ("U_service >= 1000", "U_service >= 1001", "acceptance / 1"),
-    ("name: tube wall, ", "name: tube walls,", "resistances / tube wall removed"),
-    ("for the summer duty", "for the winter duty", "purpose"),
-    ("reason: First issue", "reason: First issues", "revisions / A"),
-])
-def test_an_edit_voids_every_sign_off_and_names_what_changed(path: Path, old: str, new: str, named: str) -> None:
+@pytest.mark.parametrize(
+    ("old", "new", "named"),
+    [
+        ("value: 0.00018 m^2 K/W", "value: 0.00019 m^2 K/W", "givens / R_fo"),
+        ("title: Overall coefficient", "title: Overal coefficient", "calculation / title"),
+        ("source: flow meter FT-101", "source: flow meter FT-102", "givens / m_hot"),
+        ("U_service >= 1000", "U_service >= 1001", "acceptance / 1"),
+        ("name: tube wall, ", "name: tube walls,", "resistances / tube wall removed"),
+        ("for the summer duty", "for the winter duty", "purpose"),
+        ("reason: First issue", "reason: First issues", "revisions / A"),
+    ],
+)
+def test_an_edit_voids_every_sign_off_and_names_what_changed(
+    path: Path, old: str, new: str, named: str
+) -> None:
     change(path, old, new)
     found = judged(path)
     assert [item.validity for item in found] == ["void"] * 3
@@ -254,20 +268,31 @@ def test_another_person_in_the_book_voids_nothing(path: Path) -> None:
     assert [item.validity for item in judged(path)] == ["valid"] * 3
 
 
-@pytest.mark.parametrize(("old", "new"), [
-    ("# A cooler of the closed water loop.", "# Another comment altogether."),
-    ("# A cooler of the closed water loop.\n", ""),
-    ("resistances:\n", "resistances:    # in order, from the inside\n\n"),
-    ("  title: Overall coefficient of the closed-loop water cooler\n  plant: Larkmoor Works\n",
-     "  plant: Larkmoor Works\n  title: Overall coefficient of the closed-loop water cooler\n"),
-    ("{value: 15.75 mm,  is: tube bore,              source: drawing LM-WC-101-03 rev 2}",
-     "{source: drawing LM-WC-101-03 rev 2, is: tube bore,value:  15.75 mm}"),
-    ("  Set the clean and service overall coefficient of cooler WC-101\n  for the summer duty.",
-     "  Set the clean and service overall\n  coefficient   of cooler WC-101 for the summer duty."),
-    ("title: Overall coefficient of the closed-loop water cooler",
-     "title: \"Overall coefficient of the closed-loop  water cooler\""),
-    ("report: {U on: outside, units: SI}", "report:\n  units: SI\n  U on: outside"),
-])
+@pytest.mark.parametrize(
+    ("old", "new"),
+    [
+        ("# A cooler of the closed water loop.", "# Another comment altogether."),
+        ("# A cooler of the closed water loop.\n", ""),
+        ("resistances:\n", "resistances:    # in order, from the inside\n\n"),
+        (
+            "  title: Overall coefficient of the closed-loop water cooler\n  plant: Larkmoor Works\n",
+            "  plant: Larkmoor Works\n  title: Overall coefficient of the closed-loop water cooler\n",
+        ),
+        (
+            "{value: 15.75 mm,  is: tube bore,              source: drawing LM-WC-101-03 rev 2}",
+            "{source: drawing LM-WC-101-03 rev 2, is: tube bore,value:  15.75 mm}",
+        ),
+        (
+            "  Set the clean and service overall coefficient of cooler WC-101\n  for the summer duty.",
+            "  Set the clean and service overall\n  coefficient   of cooler WC-101 for the summer duty.",
+        ),
+        (
+            "title: Overall coefficient of the closed-loop water cooler",
+            'title: "Overall coefficient of the closed-loop  water cooler"',
+        ),
+        ("report: {U on: outside, units: SI}", "report:\n  units: SI\n  U on: outside"),
+    ],
+)
 def test_comments_key_order_and_white_space_void_nothing(path: Path, old: str, new: str) -> None:
     change(path, old, new)
     assert [item.validity for item in judged(path)] == ["valid"] * 3
@@ -320,7 +345,9 @@ def test_software_that_changes_no_displayed_digit_keeps_the_sign_offs_with_a_not
         assert re.fullmatch(r"CoolProp \S+ then, 99\.0 now: no displayed digit changed", item.notes[0])
 
 
-def test_software_that_changes_a_digit_voids_and_is_named(path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+def test_software_that_changes_a_digit_voids_and_is_named(
+    path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
     from calcbook.record import digest as digest_room
 
     original = digest_room.displayed
@@ -335,8 +362,11 @@ def test_software_that_changes_a_digit_voids_and_is_named(path: Path, monkeypatc
     monkeypatch.setattr("calcbook.revisions.signoffs.displayed", moved)
     for item in judged(path):
         assert item.validity == "void"
-        assert re.fullmatch(r"results changed by the software \(CoolProp \S+ then, 99\.0 now\):"
-                            r" U_service \S+ W/\(m²·K\) then, 1390\.2 W/\(m²·K\) now", item.why[0])
+        assert re.fullmatch(
+            r"results changed by the software \(CoolProp \S+ then, 99\.0 now\):"
+            r" U_service \S+ W/\(m²·K\) then, 1390\.2 W/\(m²·K\) now",
+            item.why[0],
+        )
 
 
 def test_a_digit_in_the_working_alone_names_the_term(path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
@@ -346,7 +376,11 @@ def test_a_digit_in_the_working_alone_names_the_term(path: Path, monkeypatch: py
 
     def moved(solved: Solved) -> dict[str, list[str]]:
         shown = original(solved)
-        name = next(name for name in shown if name.startswith("step tube-side film/") and name.endswith("Re / service"))
+        name = next(
+            name
+            for name in shown
+            if name.startswith("step tube-side film/") and name.endswith("Re / service")
+        )
         shown[name] = ["1", *shown[name][1:]]
         return shown
 
@@ -370,7 +404,10 @@ def test_the_record_shows_valid_void_and_missing(tmp_path: Path) -> None:
     text = record_text(work.solved, life_of(path, work.solved, work.output))
     block = text[text.index("## 16. Sign-off") : text.index("## 17.")]
     assert "| prepared | valid | K. L. (kl) | 2026-09-02 |" in block
-    assert "| checked | void | M. R. (mr) | 2026-09-03 | review of every line | meaning changed: givens / R_fo;" in block
+    assert (
+        "| checked | void | M. R. (mr) | 2026-09-03 | review of every line | meaning changed: givens / R_fo;"
+        in block
+    )
     assert re.search(r"\| approved \| (missing|not signed) \|", block)
     assert "| State | prepared |" in text
 
@@ -387,7 +424,10 @@ def test_a_record_without_a_life_has_every_sign_off_missing(signed: Path) -> Non
     solved = work_of(signed).solved
     text = record_text(solved)
     assert text == record_text(solved, Life())
-    assert len(re.findall(r"^\| (prepared|checked|approved) \| (missing|not signed) \|", text, re.MULTILINE)) == 3
+    assert (
+        len(re.findall(r"^\| (prepared|checked|approved) \| (missing|not signed) \|", text, re.MULTILINE))
+        == 3
+    )
     assert "| State | in preparation |" in text
 
 
@@ -396,7 +436,8 @@ HOSTILE = "a | b `code` <b>bold</b> &amp; \u05d0\u05d1 \u200f\u200d [x](y) * _ ~
 
 def test_hostile_words_neither_break_the_tables_nor_the_digest(tmp_path: Path) -> None:
     calculation = CALCULATION.replace(
-        "title: Overall coefficient of the closed-loop water cooler", f'title: "{HOSTILE}"')
+        "title: Overall coefficient of the closed-loop water cooler", f'title: "{HOSTILE}"'
+    )
     book = BOOK.replace("mr: {name: M. R.}", f'mr: {{name: "{HOSTILE}"}}')
     path = make_book(tmp_path, calculation, book)
     sign_prepared(path)
@@ -426,7 +467,7 @@ def test_characters_that_cannot_be_seen_are_refused_in_a_form(tmp_path: Path) ->
 
 
 def cells_of_tables(text: str) -> None:
-    """Every row of every table, as a Markdown reader sees it, has as many cells as its head; no HTML is read."""
+    """Every row of every table, as a Markdown reader sees it, has as many cells as its head; no HTML."""
     width = cells = 0
     for token in MarkdownIt("commonmark").enable("table").parse(text):
         assert token.type not in ("html_block",)

@@ -7,6 +7,7 @@ from pathlib import Path
 
 import pytest
 from click.testing import CliRunner
+from two_sides import STATED, example, with_value
 
 from calcbook.commands import main
 from calcbook.faults import Faults
@@ -14,7 +15,6 @@ from calcbook.interface import solve_file
 from calcbook.record import markdown
 from calcbook.revisions.recall import Recall, Wanted, recall, recall_blocks, recall_data
 from calcbook.revisions.seals import Issued, seal_text
-from two_sides import STATED, example, with_value
 
 
 @pytest.fixture

@@ -9,6 +9,7 @@ from pathlib import Path
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+from signed_book import BOOK, CALCULATION, change, day, make_book, sign_all, sign_prepared, work_of
 
 from calcbook.faults import Faults
 from calcbook.revisions.issuing import issue
@@ -16,7 +17,6 @@ from calcbook.revisions.lifecycle import lifecycle_of
 from calcbook.revisions.revising import next_revision, revise
 from calcbook.revisions.seals import revision_order
 from calcbook.revisions.signing import declare_void
-from signed_book import BOOK, CALCULATION, change, day, make_book, sign_all, sign_prepared, work_of
 
 LINE = "  - {revision: B, date: 2026-11-20, reason: to be written}"
 
@@ -38,17 +38,30 @@ def edits(before: str, after: str) -> list[str]:
     return [line for line in lines if line[:2] in ("- ", "+ ")]
 
 
-@pytest.mark.parametrize(("revision", "scheme", "numbers", "following"), [
-    ("A", "letters", False, "B"), ("Z", "letters", False, "AA"), ("AZ", "letters", False, "BA"), ("b", "letters", False, "c"),
-    ("A", "letters", True, "B"), ("0", "numbers", False, "1"), ("9", "numbers", False, "10"), ("09", "numbers", False, "10"),
-    ("A", "letters then numbers", False, "B"), ("C", "letters then numbers", True, "0"),
-    ("0", "letters then numbers", False, "1"), ("1", "letters then numbers", True, "2"),
-])
+@pytest.mark.parametrize(
+    ("revision", "scheme", "numbers", "following"),
+    [
+        ("A", "letters", False, "B"),
+        ("Z", "letters", False, "AA"),
+        ("AZ", "letters", False, "BA"),
+        ("b", "letters", False, "c"),
+        ("A", "letters", True, "B"),
+        ("0", "numbers", False, "1"),
+        ("9", "numbers", False, "10"),
+        ("09", "numbers", False, "10"),
+        ("A", "letters then numbers", False, "B"),
+        ("C", "letters then numbers", True, "0"),
+        ("0", "letters then numbers", False, "1"),
+        ("1", "letters then numbers", True, "2"),
+    ],
+)
 def test_the_next_revision_by_the_scheme(revision: str, scheme: str, numbers: bool, following: str) -> None:
     assert next_revision(revision, scheme, numbers) == following
 
 
-@pytest.mark.parametrize(("revision", "scheme"), [("1", "letters"), ("A", "numbers"), ("P01", "letters then numbers")])
+@pytest.mark.parametrize(
+    ("revision", "scheme"), [("1", "letters"), ("A", "numbers"), ("P01", "letters then numbers")]
+)
 def test_a_revision_outside_the_scheme_is_refused(revision: str, scheme: str) -> None:
     assert codes(lambda: next_revision(revision, scheme)) == ["revision-scheme"]
 
@@ -63,27 +76,47 @@ def test_three_lines_change_and_every_comment_stays(tmp_path: Path) -> None:
     path = make_book(tmp_path)
     assert revised(path) == ("A", "B")
     assert edits(CALCULATION, path.read_text(encoding="utf-8")) == [
-        "-   revision: A", "+   revision: B", "-   date: 2026-09-02", "+   date: 2026-11-20", f"+ {LINE}"]
+        "-   revision: A",
+        "+   revision: B",
+        "-   date: 2026-09-02",
+        "+   date: 2026-11-20",
+        f"+ {LINE}",
+    ]
 
 
 LAYOUTS = {
     "quotes": ("revision: A\n  prepared", 'revision: "A"   # quoted\n  prepared'),
-    "block lines": ("  - {revision: A, date: 2026-09-02, reason: First issue}   # the first\n",
-                    "  # the history\n  - revision: A\n    date: 2026-09-02\n    reason: First issue   # the first\n\n"
-                    "# --- what follows ---\n"),
-    "no indent": ("  - {revision: A, date: 2026-09-02, reason: First issue}   # the first\n",
-                  "- {revision: A, date: 2026-09-02, reason: First issue}\n"),
-    "brackets": ("revisions:\n  - {revision: A, date: 2026-09-02, reason: First issue}   # the first\n",
-                 "revisions: [{revision: A, date: 2026-09-02, reason: First issue}]  # [all]\n"),
-    "brackets over lines": ("revisions:\n  - {revision: A, date: 2026-09-02, reason: First issue}   # the first\n",
-                            "revisions: [\n  {revision: A, date: 2026-09-02, reason: First issue},\n  ]\n"),
-    "no history": ("revisions:\n  - {revision: A, date: 2026-09-02, reason: First issue}   # the first\n\n", ""),
-    "head in braces": (CALCULATION[CALCULATION.index("calculation:") : CALCULATION.index("purpose:")],
-                       "calculation: {number: WC-101, title: Cooler, plant: Larkmoor Works, revision: A,\n"
-                       "  prepared by: K. L., date: '2026-09-02'}\n\n"),
-    "history last": (CALCULATION[CALCULATION.index("revisions:") :],
-                     CALCULATION[CALCULATION.index("givens:") :]
-                     + "revisions:\n  - {revision: A, date: 2026-09-02, reason: First issue}"),
+    "block lines": (
+        "  - {revision: A, date: 2026-09-02, reason: First issue}   # the first\n",
+        "  # the history\n  - revision: A\n    date: 2026-09-02\n    reason: First issue   # the first\n\n"
+        "# --- what follows ---\n",
+    ),
+    "no indent": (
+        "  - {revision: A, date: 2026-09-02, reason: First issue}   # the first\n",
+        "- {revision: A, date: 2026-09-02, reason: First issue}\n",
+    ),
+    "brackets": (
+        "revisions:\n  - {revision: A, date: 2026-09-02, reason: First issue}   # the first\n",
+        "revisions: [{revision: A, date: 2026-09-02, reason: First issue}]  # [all]\n",
+    ),
+    "brackets over lines": (
+        "revisions:\n  - {revision: A, date: 2026-09-02, reason: First issue}   # the first\n",
+        "revisions: [\n  {revision: A, date: 2026-09-02, reason: First issue},\n  ]\n",
+    ),
+    "no history": (
+        "revisions:\n  - {revision: A, date: 2026-09-02, reason: First issue}   # the first\n\n",
+        "",
+    ),
+    "head in braces": (
+        CALCULATION[CALCULATION.index("calculation:") : CALCULATION.index("purpose:")],
+        "calculation: {number: WC-101, title: Cooler, plant: Larkmoor Works, revision: A,\n"
+        "  prepared by: K. L., date: '2026-09-02'}\n\n",
+    ),
+    "history last": (
+        CALCULATION[CALCULATION.index("revisions:") :],
+        CALCULATION[CALCULATION.index("givens:") :]
+        + "revisions:\n  - {revision: A, date: 2026-09-02, reason: First issue}",
+    ),
 }
 
 
@@ -105,7 +138,13 @@ def test_any_layout_is_edited_or_left_alone(tmp_path: Path, layout: str, end: st
     assert [(item.revision, item.reason) for item in calculation.revisions][-1] == ("B", "to be written")
     kept = [line for line in edits(before.replace("\n", end), after) if line.startswith("- ")]
     assert len(kept) <= 3
-    for comment in ("# A cooler of the closed water loop.", "# quoted", "# the first", "# the history", "# [all]"):
+    for comment in (
+        "# A cooler of the closed water loop.",
+        "# quoted",
+        "# the first",
+        "# the history",
+        "# [all]",
+    ):
         assert (comment in before) == (comment in after)
 
 
@@ -122,7 +161,8 @@ def test_the_reason_must_be_written_before_the_next_begins_and_before_an_issue(t
     assert codes(lambda: revised(path)) == ["revision-begun"]
     work = work_of(path)
     assert [item.text for item in lifecycle_of(path, work.solved, work.output).open_items] == [
-        "The reason of revision B is to be written."]
+        "The reason of revision B is to be written."
+    ]
 
 
 def test_a_book_with_letters_then_numbers_goes_over_after_a_final_issue(tmp_path: Path) -> None:
@@ -138,8 +178,9 @@ def test_a_book_with_letters_then_numbers_goes_over_after_a_final_issue(tmp_path
 
 
 def change_dates_and_sign(path: Path) -> None:
-    from calcbook.revisions.signing import sign
     from signed_book import fill
+
+    from calcbook.revisions.signing import sign
 
     sign_prepared(path, "2026-09-06")
     form = sign(work_of(path), "checked", "mr", day("2026-09-07")).path

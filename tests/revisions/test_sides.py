@@ -7,20 +7,19 @@ import subprocess
 from pathlib import Path
 
 import pytest
+from click.testing import CliRunner
+from two_sides import EXAMPLES, STATED, with_value
+
+from calcbook.commands import main
 from calcbook.faults import Faults
 from calcbook.interface import solve_file
-from calcbook.record import digest_of, results_text, software_of
+from calcbook.record import digest_of, markdown, results_text, software_of
 from calcbook.revisions.comparison import compare
 from calcbook.revisions.git import commit_of
 from calcbook.revisions.pairs import compare_texts
 from calcbook.revisions.seals import Issued, seal_text
 from calcbook.revisions.sides import load_side
 from calcbook.revisions.since import compare_since, since_blocks, since_data
-from click.testing import CliRunner
-from two_sides import EXAMPLES, STATED, with_value
-
-from calcbook.commands import main
-from calcbook.record import markdown
 
 NUMBER = "CV-1"
 

@@ -11,6 +11,18 @@ from pathlib import Path
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+from signed_book import (
+    ANSWER,
+    BOOK,
+    CALCULATION,
+    change,
+    day,
+    fill,
+    make_book,
+    sign_checked,
+    sign_prepared,
+    work_of,
+)
 
 from calcbook.documents import Mapping, Scalar, read_text
 from calcbook.faults import Faults
@@ -38,7 +50,6 @@ from calcbook.revisions.signoffs import (
     signoffs_text,
     spelled,
 )
-from signed_book import ANSWER, BOOK, CALCULATION, change, day, fill, make_book, sign_checked, sign_prepared, work_of
 
 
 @pytest.fixture(scope="module")
@@ -82,7 +93,8 @@ def test_a_checker_gets_a_form_and_his_filled_form_becomes_the_sign_off(path: Pa
     assert entry.way == "review of every line"
     assert [answer.answer for answer in entry.answers] == [ANSWER] * len(forms.human_questions())
     assert [item.id for item in entry.acknowledged] == [
-        item.id for item in forms.runner_assumptions(work_of(path).solved)]
+        item.id for item in forms.runner_assumptions(work_of(path).solved)
+    ]
 
 
 def test_signing_leaves_the_signed_file_as_it_was_and_writes_the_record(path: Path) -> None:
@@ -93,7 +105,9 @@ def test_signing_leaves_the_signed_file_as_it_was_and_writes_the_record(path: Pa
     assert "| prepared | valid | K. L. (kl) | 2026-09-02 |" in record
 
 
-def test_the_form_asks_every_question_for_a_person_and_every_assumption_of_the_runner(solved_work: Work) -> None:
+def test_the_form_asks_every_question_for_a_person_and_every_assumption_of_the_runner(
+    solved_work: Work,
+) -> None:
     text = forms.form_text(solved_work.solved, "checked", "mr")
     root = read_text(text, "form").root
     assert isinstance(root, Mapping)
@@ -109,14 +123,18 @@ def test_the_form_asks_every_question_for_a_person_and_every_assumption_of_the_r
 
 @pytest.mark.parametrize("person", ["kl", "K. L.", "Karl L.", "karl l", "L., K."])
 @pytest.mark.parametrize("role", ["checked", "approved"])
-def test_the_preparer_can_sign_for_no_other_role_under_any_spelling(path: Path, role: str, person: str) -> None:
+def test_the_preparer_can_sign_for_no_other_role_under_any_spelling(
+    path: Path, role: str, person: str
+) -> None:
     sign_prepared(path)
     assert codes(lambda: sign(work_of(path), role, person, day("2026-09-03"))) == ["preparer-signs"]
     assert not path.with_name(f"wc-101.{role}.form.yaml").exists()
 
 
 @pytest.mark.parametrize("spelling", ["Karl L.", "kl", '"L., K."', "KARL  L"])
-def test_a_file_that_spells_its_preparer_otherwise_is_prepared_by_the_same_person(tmp_path: Path, spelling: str) -> None:
+def test_a_file_that_spells_its_preparer_otherwise_is_prepared_by_the_same_person(
+    tmp_path: Path, spelling: str
+) -> None:
     path = make_book(tmp_path, CALCULATION.replace("prepared by: K. L.", f"prepared by: {spelling}"))
     sign_prepared(path)
     assert codes(lambda: sign(work_of(path), "checked", "kl", day("2026-09-03"))) == ["preparer-signs"]
@@ -134,7 +152,9 @@ def test_a_sign_off_that_was_written_for_the_preparer_by_hand_is_void(path: Path
     sign_checked(path)
     kept = read_signoffs(signoffs_path(path))
     forged = bound(replace(kept.signoffs[1], person="kl", name="K. L."))
-    signoffs_path(path).write_text(signoffs_text(replace(kept, signoffs=(kept.signoffs[0], forged))), encoding="utf-8")
+    signoffs_path(path).write_text(
+        signoffs_text(replace(kept, signoffs=(kept.signoffs[0], forged))), encoding="utf-8"
+    )
     work = work_of(path)
     checked = lifecycle_of(path, work.solved, work.output).signoffs[1]
     assert (checked.validity, checked.why) == ("void", ("the preparer cannot sign for this role",))
@@ -149,7 +169,12 @@ def test_a_preparer_whom_the_book_does_not_list_is_a_fault_at_his_name(tmp_path:
     with pytest.raises(Faults) as caught:
         sign(work_of(path), "checked", "mr", day("2026-09-03"))
     (fault,) = caught.value.faults
-    assert (fault.code, fault.place.line, fault.place.column, fault.found) == ("preparer-unknown", 7, 16, "K. M.")
+    assert (fault.code, fault.place.line, fault.place.column, fault.found) == (
+        "preparer-unknown",
+        7,
+        16,
+        "K. M.",
+    )
     assert "K. L." in fault.nearest
 
 
@@ -167,13 +192,17 @@ def test_without_a_book_nobody_can_sign(path: Path) -> None:
     assert codes(lambda: sign(work_of(path), "prepared", "kl", day("2026-09-02"))) == ["person-unknown"]
 
 
-@pytest.mark.parametrize(("one", "other"), [("Smith, J.", "j smith"), ("J. Smith", "J  SMITH"), ("Ｊ Smith", "J Smith")])
+@pytest.mark.parametrize(
+    ("one", "other"), [("Smith, J.", "j smith"), ("J. Smith", "J  SMITH"), ("Ｊ Smith", "J Smith")]
+)
 def test_spellings_of_one_name(one: str, other: str) -> None:
     assert spelled(one) == spelled(other)
 
 
 def test_initials_in_another_order_are_another_person(solved_work: Work) -> None:
-    settings = replace(solved_work.solved.chain.calculation.settings, people={"mr": ("M. R.",), "rm": ("R. M.",)})
+    settings = replace(
+        solved_work.solved.chain.calculation.settings, people={"mr": ("M. R.",), "rm": ("R. M.",)}
+    )
     assert not is_same_person(settings, "mr", "rm")
     assert person_id(settings, "R M") == "rm"
 
@@ -187,10 +216,13 @@ def test_checked_comes_before_approved_and_prepared_before_checked(path: Path) -
     assert codes(lambda: sign(work_of(path), "approved", "ta", day("2026-09-03"))) == ["sign-off-order"]
 
 
-@pytest.mark.parametrize(("role", "person", "date"), [
-    ("prepared", "kl", "2026-09-01"),  # before the date of the file
-    ("checked", "mr", "2026-09-04"),  # before the sign-off prepared
-])
+@pytest.mark.parametrize(
+    ("role", "person", "date"),
+    [
+        ("prepared", "kl", "2026-09-01"),  # before the date of the file
+        ("checked", "mr", "2026-09-04"),  # before the sign-off prepared
+    ],
+)
 def test_dates_out_of_order_are_refused(path: Path, role: str, person: str, date: str) -> None:
     if role == "checked":
         sign_prepared(path, "2026-09-05")
@@ -203,10 +235,15 @@ def test_an_approval_that_was_dated_before_the_check_by_hand_is_void(path: Path)
     sign(work_of(path), "approved", "ta", day("2026-09-05"))
     kept = read_signoffs(signoffs_path(path))
     early = bound(replace(kept.signoffs[2], date="2026-09-04"))
-    signoffs_path(path).write_text(signoffs_text(replace(kept, signoffs=(*kept.signoffs[:2], early))), encoding="utf-8")
+    signoffs_path(path).write_text(
+        signoffs_text(replace(kept, signoffs=(*kept.signoffs[:2], early))), encoding="utf-8"
+    )
     work = work_of(path)
     approved = lifecycle_of(path, work.solved, work.output).signoffs[2]
-    assert (approved.validity, approved.why) == ("void", ("its date lies before that of checked, 2026-09-05",))
+    assert (approved.validity, approved.why) == (
+        "void",
+        ("its date lies before that of checked, 2026-09-05",),
+    )
 
 
 def test_a_date_in_the_future_is_refused(path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
@@ -230,39 +267,45 @@ def known(solved_work: Work) -> forms.Citable:
     return forms.citable(solved_work.solved, record_text(solved_work.solved))
 
 
-@pytest.mark.parametrize(("answer", "code"), [
-    ("", "answer-empty"),
-    ("   ", "answer-empty"),
-    ("ok", "answer-bare"),
-    ("Yes.", "answer-bare"),
-    ("x", "answer-bare"),
-    ("checked", "answer-bare"),
-    ("\u2713", "answer-bare"),
-    ("R_fo ok", "answer-bare"),
-    ("yes, checked, 15.75 mm", "answer-bare"),
-    ("very very very very good", "answer-bare"),
-    ("All figures were compared with their drawings.", "answer-cites-nothing"),
-    ("There are 2 streams and 5 terms in this file.", "answer-cites-nothing"),
-    ("The allowance of 0.00077 m² K/W stands in the standard.", "answer-cites-nothing"),
-    ("It was compared on 2026-09-02 with the drawing.", "answer-cites-nothing"),
-    ("A pump curve was looked at as well.", "answer-cites-nothing"),
-    ("The chain shows film/nobody/Nu as wanted.", "answer-cites-nothing"),
-])
+@pytest.mark.parametrize(
+    ("answer", "code"),
+    [
+        ("", "answer-empty"),
+        ("   ", "answer-empty"),
+        ("ok", "answer-bare"),
+        ("Yes.", "answer-bare"),
+        ("x", "answer-bare"),
+        ("checked", "answer-bare"),
+        ("\u2713", "answer-bare"),
+        ("R_fo ok", "answer-bare"),
+        ("yes, checked, 15.75 mm", "answer-bare"),
+        ("very very very very good", "answer-bare"),
+        ("All figures were compared with their drawings.", "answer-cites-nothing"),
+        ("There are 2 streams and 5 terms in this file.", "answer-cites-nothing"),
+        ("The allowance of 0.00077 m² K/W stands in the standard.", "answer-cites-nothing"),
+        ("It was compared on 2026-09-02 with the drawing.", "answer-cites-nothing"),
+        ("A pump curve was looked at as well.", "answer-cites-nothing"),
+        ("The chain shows film/nobody/Nu as wanted.", "answer-cites-nothing"),
+    ],
+)
 def test_an_answer_that_is_refused(known: forms.Citable, answer: str, code: str) -> None:
     fault = forms.answer_fault(answer, known)
     assert fault is not None
     assert fault[0] == code
 
 
-@pytest.mark.parametrize("answer", [
-    "R_fo agrees with table 2 of the plant standard.",
-    "The bore of 15.75 mm stands on the drawing.",
-    "The flow of 18.2 kg/s is the meter's reading.",
-    "The bulk of 74 °C was read from the sheet.",
-    "The Reynolds number in `tube-side film/Re` is what I find by hand.",
-    "The check tube-side film / gnielinski-1976 / turbulent holds with a wide margin.",
-    "N was counted on the drawing of the tube sheet.",
-])
+@pytest.mark.parametrize(
+    "answer",
+    [
+        "R_fo agrees with table 2 of the plant standard.",
+        "The bore of 15.75 mm stands on the drawing.",
+        "The flow of 18.2 kg/s is the meter's reading.",
+        "The bulk of 74 °C was read from the sheet.",
+        "The Reynolds number in `tube-side film/Re` is what I find by hand.",
+        "The check tube-side film / gnielinski-1976 / turbulent holds with a wide margin.",
+        "N was counted on the drawing of the tube sheet.",
+    ],
+)
 def test_an_answer_that_is_taken(known: forms.Citable, answer: str) -> None:
     assert forms.answer_fault(answer, known) is None
 
@@ -283,7 +326,11 @@ def test_every_fault_of_a_form_is_told_at_once_with_its_line(path: Path) -> None
     with pytest.raises(Faults) as caught:
         sign(work_of(path), "checked", "mr", day("2026-09-03"))
     found = [fault.code for fault in caught.value.faults]
-    assert found == ["way-unknown", *["answer-empty"] * questions, *["assumption-not-acknowledged"] * assumptions]
+    assert found == [
+        "way-unknown",
+        *["answer-empty"] * questions,
+        *["assumption-not-acknowledged"] * assumptions,
+    ]
     lines = form.read_text(encoding="utf-8").split("\n")
     assert all(lines[fault.place.line - 1].rstrip().endswith('""') for fault in caught.value.faults)
     assert form.is_file()
@@ -299,16 +346,23 @@ def test_one_bare_tick_among_good_answers_is_refused(path: Path) -> None:
     assert codes(lambda: sign(work_of(path), "checked", "mr", day("2026-09-03"))) == ["answer-bare"]
 
 
-@pytest.mark.parametrize(("old", "new", "code"), [
-    ('person: "mr"', 'person: "ta"', "form-of-another"),
-    ('revision: "A"', 'revision: "B"', "form-of-another"),
-    ('number: "WC-101"', 'number: "WC-102"', "form-of-another"),
-    ('way of checking: "review of every line"', 'way of checking: "a glance"', "way-unknown"),
-    ('way of checking: "review of every line"', 'way of checking: "alternate calculation"', "answer-empty"),
-    ('acknowledged: "acknowledged"', 'acknowledged: "ok"', "assumption-not-acknowledged"),
-    ('  - number: "2"', '  - number: "99"', "question-missing"),
-    ("questions:", "querstions:", "key-unknown"),
-])
+@pytest.mark.parametrize(
+    ("old", "new", "code"),
+    [
+        ('person: "mr"', 'person: "ta"', "form-of-another"),
+        ('revision: "A"', 'revision: "B"', "form-of-another"),
+        ('number: "WC-101"', 'number: "WC-102"', "form-of-another"),
+        ('way of checking: "review of every line"', 'way of checking: "a glance"', "way-unknown"),
+        (
+            'way of checking: "review of every line"',
+            'way of checking: "alternate calculation"',
+            "answer-empty",
+        ),
+        ('acknowledged: "acknowledged"', 'acknowledged: "ok"', "assumption-not-acknowledged"),
+        ('  - number: "2"', '  - number: "99"', "question-missing"),
+        ("questions:", "querstions:", "key-unknown"),
+    ],
+)
 def test_a_form_that_is_not_what_was_asked_for(path: Path, old: str, new: str, code: str) -> None:
     sign_prepared(path)
     form = sign(work_of(path), "checked", "mr", day("2026-09-03")).path
@@ -333,7 +387,9 @@ def test_an_alternate_calculation_names_what_it_was_checked_with(path: Path) -> 
     form = sign(work_of(path), "checked", "mr", day("2026-09-03")).path
     fill(form, way="alternate calculation")
     text = form.read_text(encoding="utf-8")
-    form.write_text(text.replace('checked with: ""', 'checked with: "hand calculation HC-12 rev 1"'), encoding="utf-8")
+    form.write_text(
+        text.replace('checked with: ""', 'checked with: "hand calculation HC-12 rev 1"'), encoding="utf-8"
+    )
     sign(work_of(path), "checked", "mr", day("2026-09-03"))
     work = work_of(path)
     checked = lifecycle_of(path, work.solved, work.output).signoffs[1]
@@ -409,7 +465,9 @@ def test_hand_values_come_before_the_form_and_once(path: Path) -> None:
     put_hand_value(form, "h tube-side film clean", "9500 W/(m^2 K)")
     blind_form(path)
     assert codes(lambda: blind_form(path)) == ["blind-too-late"]
-    assert codes(lambda: sign(work_of(path), "prepared", "kl", day("2026-09-03"), blind=True)) == ["blind-too-late"]
+    assert codes(lambda: sign(work_of(path), "prepared", "kl", day("2026-09-03"), blind=True)) == [
+        "blind-too-late"
+    ]
 
 
 def test_hand_values_after_the_form_are_too_late(path: Path) -> None:
@@ -418,8 +476,10 @@ def test_hand_values_after_the_form_are_too_late(path: Path) -> None:
     assert codes(lambda: blind_form(path)) == ["blind-too-late"]
 
 
-@pytest.mark.parametrize(("value", "code"), [("1400", "unit-missing"), ("1400 W/m^2 K", "unit-ambiguous"),
-                                             ("-3 W/(m^2 K)", "quantity-negative")])
+@pytest.mark.parametrize(
+    ("value", "code"),
+    [("1400", "unit-missing"), ("1400 W/m^2 K", "unit-ambiguous"), ("-3 W/(m^2 K)", "quantity-negative")],
+)
 def test_a_hand_value_is_a_quantity(path: Path, value: str, code: str) -> None:
     sign_prepared(path)
     put_hand_value(blind_form(path), "U_service", value)
@@ -429,8 +489,12 @@ def test_a_hand_value_is_a_quantity(path: Path, value: str, code: str) -> None:
 # --- the file ---------------------------------------------------------------------------------------
 
 # What a reader of YAML refuses, escaped or not, reaches no file of sign-offs.
-REFUSED = re.compile("[\x00-\x08\x0b\x0c\x0e-\x1f\x7f-\x9f\u2028\u2029\u202a-\u202e\u2066-\u2069\ufeff\ufffe\uffff]")
-TEXTS = st.text(st.characters(exclude_categories=("Cs",)), max_size=30).map(lambda text: REFUSED.sub("", text))
+REFUSED = re.compile(
+    "[\x00-\x08\x0b\x0c\x0e-\x1f\x7f-\x9f\u2028\u2029\u202a-\u202e\u2066-\u2069\ufeff\ufffe\uffff]"
+)
+TEXTS = st.text(st.characters(exclude_categories=("Cs",)), max_size=30).map(
+    lambda text: REFUSED.sub("", text)
+)
 
 
 @given(TEXTS)
@@ -443,12 +507,26 @@ def test_any_text_is_read_back_from_its_quotes(text: str) -> None:
 
 
 @given(TEXTS, TEXTS, TEXTS)
-def test_a_file_of_sign_offs_is_read_back_as_it_was_written(tmp_path_factory: pytest.TempPathFactory,
-                                                            solved_work: Work, one: str, two: str, three: str) -> None:
+def test_a_file_of_sign_offs_is_read_back_as_it_was_written(
+    tmp_path_factory: pytest.TempPathFactory, solved_work: Work, one: str, two: str, three: str
+) -> None:
     content = content_of(solved_work.solved)
     values = HandValues("checked", one, "2026-09-03", "A", two, (HandValue("U_service", three),), "x")
-    entry = bound(SignOff("checked", one, two, "2026-09-03", "A", content, three, one, (Answer("2", one, two),),
-                          (Acknowledged(one, two, three),), values))
+    entry = bound(
+        SignOff(
+            "checked",
+            one,
+            two,
+            "2026-09-03",
+            "A",
+            content,
+            three,
+            one,
+            (Answer("2", one, two),),
+            (Acknowledged(one, two, three),),
+            values,
+        )
+    )
     whole = SignOffFile((entry,), (values,), Voiding(one, "2026-09-05", two))
     path = tmp_path_factory.getbasetemp() / "kept.signoffs.yaml"
     path.write_text(signoffs_text(whole), encoding="utf-8", newline="\n")
@@ -468,8 +546,15 @@ def test_a_sign_off_that_was_altered_by_one_character_is_void(path: Path) -> Non
     assert (checked.validity, checked.why) == ("void", ("the sign-off was altered after it was made",))
 
 
-@pytest.mark.parametrize("text", ["- a list\n", "sign-offs: nothing\n", "sign-offs:\n  - {role: prepared}\n",
-                                  "sign-offs:\n  - {role: [prepared]}\n"])
+@pytest.mark.parametrize(
+    "text",
+    [
+        "- a list\n",
+        "sign-offs: nothing\n",
+        "sign-offs:\n  - {role: prepared}\n",
+        "sign-offs:\n  - {role: [prepared]}\n",
+    ],
+)
 def test_a_file_of_sign_offs_that_is_none_is_a_fault(path: Path, text: str) -> None:
     signoffs_path(path).write_text(text, encoding="utf-8")
     assert codes(lambda: read_signoffs(signoffs_path(path))) == ["sign-offs-unreadable"]
@@ -483,7 +568,9 @@ def test_a_void_calculation_says_so_and_can_neither_be_signed_nor_declared_void_
     work = work_of(path)
     assert lifecycle_of(path, work.solved, work.output).state == "void"
     assert codes(lambda: sign(work_of(path), "prepared", "kl", day("2026-09-06"))) == ["calculation-void"]
-    assert codes(lambda: declare_void(work_of(path), "ta", day("2026-09-06"), "Again and again.")) == ["calculation-void"]
+    assert codes(lambda: declare_void(work_of(path), "ta", day("2026-09-06"), "Again and again.")) == [
+        "calculation-void"
+    ]
     record = (work.output / "WC-101" / "record.md").read_text(encoding="utf-8")
     assert "> Void since 2026-09-06: The cooler is replaced, see WC-201." in record
 

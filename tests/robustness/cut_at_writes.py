@@ -1,10 +1,10 @@
-"""Cut a command at each of its file operations in turn: a process that kills itself right before the operation.
+"""Cut a command at each of its file operations in turn: a process kills itself right before the operation.
 
     python tests/robustness/cut_at_writes.py COMMAND BEFORE AFTER
 
-BEFORE and AFTER are the book before the command and what the command makes of it. Random kills seldom fall between two
-file operations; this goes through all of them. Prints what was lost and how many cuts there were; the exit code is 1
-when anything was lost, or when the uncut command made something else than AFTER.
+BEFORE and AFTER are the book before the command and what the command makes of it. Random kills seldom fall
+between two file operations; this goes through all of them. Prints what was lost and how many cuts there were;
+the exit code is 1 when anything was lost, or when the uncut command made something else than AFTER.
 """
 
 from __future__ import annotations
@@ -20,7 +20,15 @@ from pathlib import Path
 import kill_runs
 from signed_book import day, work_of
 
-OPERATIONS = ("os.rename", "os.mkdir", "os.remove", "os.rmdir", "os.chmod", "tempfile.mkstemp", "tempfile.mkdtemp")
+OPERATIONS = (
+    "os.rename",
+    "os.mkdir",
+    "os.remove",
+    "os.rmdir",
+    "os.chmod",
+    "tempfile.mkstemp",
+    "tempfile.mkdtemp",
+)
 MOST_CUTS = 200  # an issue has about forty operations; a command that never ends is found by this
 
 
@@ -30,8 +38,12 @@ def cut_before(number: int, root: str) -> None:
 
     def watch(event: str, arguments: tuple[object, ...]) -> None:
         nonlocal count
-        writing = event == "open" and isinstance(arguments[2], int) and arguments[2] & (os.O_WRONLY | os.O_RDWR)
-        if (writing or event in OPERATIONS) and (isinstance(arguments[0], int) or str(arguments[0]).startswith(root)):
+        writing = (
+            event == "open" and isinstance(arguments[2], int) and arguments[2] & (os.O_WRONLY | os.O_RDWR)
+        )
+        if (writing or event in OPERATIONS) and (
+            isinstance(arguments[0], int) or str(arguments[0]).startswith(root)
+        ):
             if count == number:
                 os.kill(os.getpid(), signal.SIGKILL)
             count += 1

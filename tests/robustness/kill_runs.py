@@ -2,15 +2,16 @@
 
     python tests/robustness/kill_runs.py --kills 200 --seed 1
 
-Every kill is SIGKILL, so nothing of the program can tidy up. A file is whole when its bytes are those of before the
-command or those of after it; an issued copy is whole when it is not there or its seal holds. What a writer leaves
-beside (`.writing-…`, `.issuing-…`) is no file of the book. Prints how many were tried, how many met the program at
-work, and what was lost; the exit code is 1 when anything was.
+Every kill is SIGKILL, so nothing of the program can tidy up. A file is whole when its bytes are those of
+before the command or those of after it; an issued copy is whole when it is not there or its seal holds. What a
+writer leaves beside (`.writing-…`, `.issuing-…`) is no file of the book. Prints how many were tried, how many
+met the program at work, and what was lost; the exit code is 1 when anything was.
 """
 
 from __future__ import annotations
 
 import argparse
+import os
 import random
 import shutil
 import subprocess
@@ -49,9 +50,10 @@ class Tried:
 
 @dataclass(frozen=True)
 class Prepared:
-    """A book just before a command, with its files before and after, and how long the command takes."""
+    """A book just before a command and just after, with the files of both, and how long the command takes."""
 
     folder: Path
+    whole: Path
     before: Files
     after: Files
     seconds: float
@@ -60,15 +62,23 @@ class Prepared:
 def start(folder: Path, command: str) -> subprocess.Popen[bytes]:
     """The command in a process of its own, in the folder of the book."""
     return subprocess.Popen(
-        [sys.executable, "-m", "calcbook", *COMMANDS[command]], cwd=folder, stdin=subprocess.DEVNULL,
-        stdout=subprocess.DEVNULL, stderr=subprocess.PIPE, env=_environment(folder))
+        [sys.executable, "-m", "calcbook", *COMMANDS[command]],
+        cwd=folder,
+        stdin=subprocess.DEVNULL,
+        stdout=subprocess.DEVNULL,
+        stderr=subprocess.PIPE,
+        env=environment(folder),
+    )
 
 
-def _environment(folder: Path) -> dict[str, str]:
-    import os
-
-    return {**os.environ, "PYTHONPATH": str(ROOT), "PYTHONDONTWRITEBYTECODE": "1",
-            "CALCBOOK_CACHE": str(folder.parent / "cache")}
+def environment(folder: Path) -> dict[str, str]:
+    """This environment, with the program under test and a cache beside the book."""
+    return {
+        **os.environ,
+        "PYTHONPATH": os.pathsep.join((str(ROOT), str(ROOT / "tests" / "revisions"))),
+        "PYTHONDONTWRITEBYTECODE": "1",
+        "CALCBOOK_CACHE": str(folder.parent / "cache"),
+    }
 
 
 def files_of(folder: Path) -> Files:
@@ -82,7 +92,7 @@ def files_of(folder: Path) -> Files:
 
 
 def prepare(folder: Path, command: str) -> Prepared:
-    """A book in the state that the command starts from, and what the command makes of it when nobody kills it."""
+    """A book in the state that the command starts from, and what the command makes of it when it ends."""
     base = folder / f"{command}-base"
     path = make_book(base)
     if command == "issue":
@@ -100,7 +110,7 @@ def prepare(folder: Path, command: str) -> Prepared:
     _, errors = finished.communicate()
     assert finished.returncode == 0, errors.decode()
     seconds = time.monotonic() - begun
-    return Prepared(base, files_of(base), files_of(whole), seconds)
+    return Prepared(base, whole, files_of(base), files_of(whole), seconds)
 
 
 def kill_once(prepared: Prepared, command: str, delay: float, scratch: Path) -> Tried:
@@ -150,8 +160,10 @@ def main() -> int:
         tried = kill_many(arguments.kills, arguments.seed, Path(folder))
     for command in COMMANDS:
         own = [item for item in tried if item.command == command]
-        print(f"{command}: tried {len(own)}, killed at work {sum(item.was_at_work for item in own)},"
-              f" lost {sum(len(item.lost) for item in own)}")
+        print(
+            f"{command}: tried {len(own)}, killed at work {sum(item.was_at_work for item in own)},"
+            f" lost {sum(len(item.lost) for item in own)}"
+        )
     for item in tried:
         for name in item.lost:
             print(f"lost: {item.command} after {item.delay:.3f} s: {name}")

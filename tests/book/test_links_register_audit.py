@@ -1,0 +1,156 @@
+"""A book as a whole: calculations that take from each other, the register, the audit."""
+
+from __future__ import annotations
+
+import json
+from pathlib import Path
+
+import pytest
+from click.testing import CliRunner, Result
+
+from calcbook.book.auditing import audit
+from calcbook.book.entries import read_entries
+from calcbook.book.finding import find_calculations
+from calcbook.commands import main
+from calcbook.faults import Collector, Faults
+from calcbook.interface import solve_file
+from calcbook.library.errata import Erratum, read_errata
+
+GOOD = (Path(__file__).resolve().parents[2] / "calcs/wc-101.yaml").read_text(encoding="utf-8")
+HOT = "T_hot:  {value: 74 degC,   is: mean hot temperature,   source: heat balance sheet 12, tolerance: 0.5 K}"
+FED = "T_hot:  {from: {calculation: S-1, result: T inside surface service}, is: surface of the source}"
+
+
+def invoke(*words: str) -> Result:
+    return CliRunner().invoke(main, list(words), catch_exceptions=False)
+
+
+@pytest.fixture
+def book(tmp_path: Path) -> Path:
+    """A source and a calculation that it feeds, with their records."""
+    folder = tmp_path / "calcs"
+    folder.mkdir()
+    (folder / "book.yaml").write_text("book: A test book\noutput: ../output\n", encoding="utf-8")
+    (folder / "source.yaml").write_text(GOOD.replace("number: WC-101", "number: S-1"), encoding="utf-8")
+    assert HOT in GOOD
+    fed = GOOD.replace("number: WC-101", "number: F-1").replace(HOT, FED)
+    (folder / "fed.yaml").write_text(fed, encoding="utf-8")
+    assert invoke("run", str(folder)).exit_code == 0
+    return folder
+
+
+def test_a_given_takes_the_figure_of_its_source(book: Path) -> None:
+    source = solve_file(book / "source.yaml")
+    fed = solve_file(book / "fed.yaml")
+    wanted = source.base.results["T inside surface service"].value
+    # Ten digits travel from one calculation to the other, as the results file stores them.
+    assert fed.base.inputs["given/T_hot"] == pytest.approx(wanted, rel=1e-9)
+    given = fed.chain.calculation.givens["T_hot"]
+    assert given.link is not None and given.link.revision == "B"
+    assert given.source.startswith("calculation S-1 revision B, T inside surface service, digest ")
+
+
+def test_a_source_that_is_not_pinned_or_preliminary_is_an_open_item(book: Path) -> None:
+    items = {item.id: item.text for item in solve_file(book / "fed.yaml").open_items}
+    assert "preliminary, 1 open item(s), and not pinned" in items["given/T_hot/link"]
+
+
+def test_a_changed_source_moves_what_it_feeds(book: Path) -> None:
+    before = solve_file(book / "fed.yaml").base.results["U_service"].value
+    source = book / "source.yaml"
+    source.write_text(source.read_text(encoding="utf-8").replace("74 degC", "80 degC"), encoding="utf-8")
+    assert solve_file(book / "fed.yaml").base.results["U_service"].value != before
+
+
+@pytest.mark.parametrize(
+    ("link", "code"),
+    [
+        ("{calculation: S-2, result: U_service}", "link-source-unknown"),
+        ("{calculation: S-1, result: U_servise}", "link-result-unknown"),
+        ("{calculation: S-1, result: U_service, revision: A}", "link-revision-unknown"),
+        ("{calculation: S-1, result: U_service}", "unit-dimension"),
+        ("{calculation: F-1, result: T inside surface service}", "link-circular"),
+    ],
+)
+def test_a_link_that_leads_nowhere_is_a_fault(book: Path, link: str, code: str) -> None:
+    fed = book / "fed.yaml"
+    text = fed.read_text(encoding="utf-8").replace("{calculation: S-1, result: T inside surface service}", link)
+    fed.write_text(text, encoding="utf-8")
+    with pytest.raises(Faults) as caught:
+        solve_file(fed)
+    assert code in {fault.code for fault in caught.value.faults}
+
+
+def test_a_circle_over_two_calculations_is_told(book: Path) -> None:
+    source = book / "source.yaml"
+    back = "T_hot:  {from: {calculation: F-1, result: T inside surface service}, is: surface of the other}"
+    source.write_text(source.read_text(encoding="utf-8").replace(HOT, back), encoding="utf-8")
+    with pytest.raises(Faults) as caught:
+        solve_file(source)
+    assert "link-circular" in {fault.code for fault in caught.value.faults}
+
+
+def test_the_register_lists_every_calculation_with_what_it_takes_and_feeds(book: Path) -> None:
+    result = invoke("register", str(book))
+    assert result.exit_code == 0
+    text = (book.parent / "output/register.md").read_text(encoding="utf-8")
+    assert result.stdout == text
+    rows = {row[1]: row for row in ([cell.strip() for cell in line.split("|")] for line in text.splitlines())
+            if len(row) > 5}
+    assert rows["S-1"][4:6] == ["in preparation", "preliminary"]
+    assert rows["S-1"][10] == "F-1 (T_hot)"
+    assert rows["F-1"][9].startswith("S-1 (T_hot; preliminary")
+    data = json.loads(invoke("register", str(book), "--format", "json").stdout)
+    assert [item["number"] for item in data] == ["F-1", "S-1"]
+    assert data[1]["U_service"] == "1130 W/(m²·K)"
+
+
+def kinds(book: Path) -> dict[str, str]:
+    collector = Collector()
+    entries = read_entries(find_calculations([book], None, collector), 1)
+    return {finding.kind: finding.text for finding in audit(entries)}
+
+
+def test_an_audit_of_a_current_book_finds_only_the_link_that_is_not_pinned(book: Path) -> None:
+    assert set(kinds(book)) == {"link"}
+
+
+def test_an_audit_finds_a_record_that_is_not_current(book: Path) -> None:
+    source = book / "source.yaml"
+    source.write_text(source.read_text(encoding="utf-8").replace("0.00035", "0.00036"), encoding="utf-8")
+    found = kinds(book)
+    assert "record not current" in found
+    assert invoke("audit", str(book)).exit_code == 1
+
+
+def test_an_audit_finds_a_stored_value_that_was_altered(book: Path) -> None:
+    results = book.parent / "output/S-1/results.json"
+    data = json.loads(results.read_text(encoding="utf-8"))
+    data["results"]["U_service"]["value"] *= 1.00000001
+    results.write_text(json.dumps(data), encoding="utf-8")
+    assert "/results/U_service/value" in kinds(book)["record not current"]
+
+
+def test_an_audit_passes_values_that_differ_in_the_last_place(book: Path) -> None:
+    results = book.parent / "output/S-1/results.json"
+    data = json.loads(results.read_text(encoding="utf-8"))
+    # 1e-10 relative is below the 1e-9 that processors are allowed to differ by.
+    data["results"]["U_service"]["value"] *= 1 + 1e-10
+    results.write_text(json.dumps(data), encoding="utf-8")
+    assert set(kinds(book)) == {"link"}
+
+
+def test_an_audit_finds_a_missing_record_and_a_fault(book: Path) -> None:
+    (book.parent / "output/S-1/record.md").unlink()
+    (book / "wrong.yaml").write_text("calculation: {number: X-1}\n", encoding="utf-8")
+    result = invoke("audit", str(book), "--format", "markdown")
+    assert result.exit_code == 1
+    assert "record missing" in result.stdout and "fault key-missing" in result.stdout
+
+
+def test_the_errata_file_reads_and_an_erratum_names_its_card(tmp_path: Path) -> None:
+    assert read_errata() == ()
+    path = tmp_path / "errata.yaml"
+    path.write_text("errata:\n  - {card: gnielinski-1976, versions: [0.1.0], wrong: a constant, mended in: 0.1.1}\n",
+                    encoding="utf-8")
+    assert read_errata(path) == (Erratum("gnielinski-1976", ("0.1.0",), "a constant", "0.1.1"),)
