@@ -106,6 +106,7 @@ CODES: dict[str, str] = {
     "method-unknown": "a method that the library or the situation does not have",
     "method-not-for-film": "a method that gives no film coefficient",
     "material-unknown": "a material that the library does not have",
+    "service-unknown": "a service that no card of typical values has",
     "surface-unknown": "a surface that the wall does not have",
     "need-missing": "a figure that a card needs and nothing gives",
     "flow-missing": "a stream without the flow that a film needs",

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 from collections.abc import Iterable
 from dataclasses import dataclass
 from pathlib import Path
@@ -50,4 +51,4 @@ def _output(file: Path, output: Path | None) -> Path:
     if output is not None:
         return output
     settings = read_settings(file.parent)
-    return file.parent / settings.output if settings.output else Path(OUTPUT)
+    return Path(os.path.normpath(file.parent / settings.output)) if settings.output else Path(OUTPUT)

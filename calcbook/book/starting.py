@@ -47,10 +47,16 @@ START = {
     "face area": ("A_face", "1.2 m^2", "area of the flow before the bank"),
     "tubes in a column": ("n_c", "6", "tubes one below the other"),
     "vapour quality": ("x_v", "0.4", "mean vapour quality"),
+    "fin height": ("L_f", "6 mm", "fin height"),
+    "fin thickness": ("t_f", "0.4 mm", "fin thickness"),
+    "fin pitch": ("p_f", "3 mm", "fin pitch"),
     "bundle diameter": ("D_b", "0.5 m", "diameter of the bundle"),
 }
 # A shell of the size of its tubes stands in for the annulus; a shell with baffles is a larger one.
 SHELL = ("D_shell", "0.5 m", "inside diameter of the shell")
+FIN_FIGURES = ("fin height", "fin thickness", "fin pitch")
+FINS = """
+     fins: {shape: annular, height: L_f, thickness: t_f, pitch: p_f, conductivity: {value: 200 W/(m K), source: tbd}}"""
 DIMENSIONS = {"tube": ("inside diameter", "outside diameter", "length"), "sphere": ("inside diameter", "outside diameter"),
               "plane": ("height", "width")}
 
@@ -153,7 +159,7 @@ def _stream(situation: Situation, saturated: bool) -> list[str]:
                 f"    phase: {phase}", "    temperature: saturation         # that of its pressure",
                 f"    pressure: {{value: {pressure}, source: tbd}}",
                 *(["    flow: flow"] if _asks_for_flow(situation) else []), ""]
-    fluid = "air" if situation.flow != "forced" or (situation.flow_area is None and _asks_for_flow(situation)) else "water"
+    fluid = "air" if situation.flow != "forced" or _has_fins(situation) or (situation.flow_area is None and _asks_for_flow(situation)) else "water"
     pressure = "4 bara" if fluid == "water" else "1.013 bara"
     lines = ["streams:", "  main:", f"    fluid: {fluid}                    # `calcbook library fluids` lists them",
              "    temperature: T_1", f"    pressure: {{value: {pressure}, source: tbd}}"]
@@ -171,9 +177,10 @@ def _geometry(situation: Situation, shape: str) -> list[str]:
 
 
 def _resistances(situation: Situation, side: str, shape: str) -> list[str]:
-    film = f"  - {{name: main film, kind: film, stream: main, situation: {situation.id}{_with(situation, shape)}}}"
+    film = f"  - {{name: main film, kind: film, stream: main, situation: {situation.id}{_with(situation, shape)}"
+    film += ("," + FINS if _has_fins(situation) else "") + "}"
     other = "outside" if side == "inside" else "inside"
-    deposit = f"  - {{name: deposit, kind: fouling, resistance: R_f, on: {side}}}"
+    deposit = f"  - {{name: deposit, kind: fouling, resistance: R_f, on: {'total finned' if _has_fins(situation) else side}}}"
     thickness = ", thickness: {value: 2 mm, source: tbd}" if shape == "plane" else ""
     wall = f"  - {{name: wall, kind: wall{thickness}, material: stainless-316-kaschnitz-2017}}"
     stated = f"  - {{name: other film, kind: film, coefficient: h_2, on: {other}, temperature: T_2}}"
@@ -181,9 +188,14 @@ def _resistances(situation: Situation, side: str, shape: str) -> list[str]:
     return ["resistances:                        # in order, from the inside to the outside", *order, ""]
 
 
+def _has_fins(situation: Situation) -> bool:
+    """Whether a situation is made for a finned surface."""
+    return any(need.quantity.name in FIN_FIGURES for need in situation.needs)
+
+
 def _with(situation: Situation, shape: str) -> str:
     """The `with:` of a film: what the situation needs and the geometry does not give."""
-    given = (*DIMENSIONS[shape], "tubes in parallel", *(("area", "perimeter") if shape == "plane" else ()))
+    given = (*DIMENSIONS[shape], "tubes in parallel", *FIN_FIGURES, *(("area", "perimeter") if shape == "plane" else ()))
     entries = [_entry(need, situation) for need in situation.needs
                if need.quantity.name not in given or need.one_of]
     entries = [entry for entry in entries if entry]

@@ -216,6 +216,8 @@ class Report:
     u_on_place: Place
     units: str
     quantity_units: Mapping[str, str]
+    service: str = ""
+    service_place: Place | None = None
 
 
 @dataclass(frozen=True, slots=True)

@@ -182,8 +182,8 @@ GEOMETRY = Description(
         Key("perimeter", "perimeter of a plane wall", "node", of=SOURCED, quantity="perimeter"),
         Key("tubes", "tubes of a bundle, in place of parallel", "node", of=SOURCED, quantity="tubes"),
         Key("passes", "tube passes of a bundle", "node", of=SOURCED, quantity="tube passes"),
-        Key("plugged", "tubes of a bundle that are plugged: {count: 6, source: …}", "mapping", of=PLUGGED),
-        Key("effective length", "length of a tube that transfers heat", "node", of=SOURCED, quantity="length"),
+        Key("plugged", "plugged tubes of a bundle: {count: 6, source: …}", "mapping", of=PLUGGED),
+        Key("effective length", "length that transfers heat", "node", of=SOURCED, quantity="length"),
     ),
 )
 DEPOSIT = Description(
@@ -208,11 +208,11 @@ FINS = Description(
     (
         Key("shape", "annular or straight", "choice", choices=("annular", "straight"), required=True),
         Key("height", "from the root to the tip", "node", of=SOURCED, quantity="fin height", required=True),
-        Key("thickness", "thickness of a fin", "node", of=SOURCED, quantity="fin thickness", required=True),
-        Key("pitch", "distance of neighbouring fins at the root", "node", of=SOURCED, quantity="fin pitch"),
-        Key("count", "straight fins around a tube, in place of the pitch", "node", of=SOURCED, quantity="fins"),
+        Key("thickness", "of one fin", "node", of=SOURCED, quantity="fin thickness", required=True),
+        Key("pitch", "distance of fins at the root", "node", of=SOURCED, quantity="fin pitch"),
+        Key("count", "straight fins around a tube, not the pitch", "node", of=SOURCED, quantity="fins"),
         Key("material", "material card of the fins", "name"),
-        Key("conductivity", "stated conductivity of the fins", "node", of=SOURCED, quantity="wall conductivity"),
+        Key("conductivity", "of the fins", "node", of=SOURCED, quantity="wall conductivity"),
         Key("tip", "whether the tip exchanges heat", "choice", choices=("convective", "adiabatic")),
         Key("method", "method of the fin efficiency", "name"),
     ),
@@ -237,7 +237,7 @@ TERM = Description(
         Key("with", "what the situation needs and the geometry does not give", "mapping"),
         Key("coefficient", "stated film coefficient", "node", of=SOURCED, quantity="film coefficient"),
         Key("resistance", "stated resistance per area", "node", of=SOURCED, quantity="area resistance"),
-        Key("on", "surface it is stated on: inside, outside, outside of <wall>, bare, total finned", "name"),
+        Key("on", "its surface: inside, outside, outside of <wall>, bare, total finned", "name"),
         Key("temperature", "bulk temperature of a stated film", "node", of=SOURCED, quantity="temperature"),
         Key("material", "material card of a wall", "name"),
         Key("conductivity", "stated wall conductivity", "node", of=SOURCED, quantity="wall conductivity"),
@@ -250,6 +250,7 @@ TERM = Description(
             quantity="outside diameter",
         ),
         Key("deposit", "fouling layer by thickness", "mapping", of=DEPOSIT),
+        Key("service", "service of an allowance, to be held against what is typical of it", "name"),
         Key("emissivity", "emissivity of the surface", "node", of=SOURCED, quantity="emissivity"),
         Key(
             "surroundings", "temperature the surface radiates to", "node", of=SOURCED, quantity="temperature"
@@ -279,7 +280,7 @@ TERM_KEYS = {
         "scales with",
         "fins",
     ),
-    "fouling": (*_STATED, "deposit"),
+    "fouling": (*_STATED, "deposit", "service"),
     "wall": ("material", "conductivity", "thickness", "outside diameter", "resistance", "on"),
     "contact": _STATED,
     "radiation": ("emissivity", "surroundings", "method"),
@@ -316,8 +317,14 @@ REPORT = Description(
     "report",
     "how results are reported",
     (
-        Key("U on", "surface of the U: inside, outside, outside of <wall>, bare, total finned", "name", required=True),
+        Key(
+            "U on",
+            "surface of the U: inside, outside, outside of <wall>, bare, total finned",
+            "name",
+            required=True,
+        ),
         Key("units", "SI, US customary, or a unit per quantity", "node"),
+        Key("service", "service of the unit, for U to be held against what is typical of it", "name"),
     ),
 )
 ACCEPT = Description(

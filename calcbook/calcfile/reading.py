@@ -134,6 +134,7 @@ class _Reader:
         resolve: Resolve | None,
     ):
         self.resolve = resolve
+        self.side_files: dict[str, dict[str, list[str]]] = {}
         self.document = document
         self.settings = settings
         self.collector = collector
@@ -173,10 +174,17 @@ class _Reader:
             cases=cases,
             accept=self.accept(cases),
             settings=self.settings,
-            meaning=meaning_of(self.document.root),
+            meaning=self.meaning(),
             place=self.place,
             broken=frozenset(self.broken),
         )
+
+    def meaning(self) -> object:
+        """The content of the file, with that of the table files it names."""
+        meaning = meaning_of(self.document.root)
+        if isinstance(meaning, dict) and self.side_files:
+            return {**meaning, "side files": self.side_files}
+        return meaning
 
     # -- helpers ------------------------------------------------------------------------------------
 
@@ -646,6 +654,9 @@ class _Reader:
             )
             return None
         columns = read_table_file(self.folder / scalar.text, scalar.place, self.collector)
+        self.side_files[scalar.text] = {
+            column: [value.text for value in values] for column, values in columns.items()
+        }
         return (
             FluidText("table", name, place, columns=columns, source=source) if columns is not None else None
         )
@@ -788,7 +799,7 @@ class _Reader:
         if isinstance(node, MappingNode) and node.key("parallel") is not None:
             return self.parallel(fields, name)
         kind = self.term_kind(fields, node)
-        text_keys = ("name", "kind", "stream", "situation", "method", "on", "material")
+        text_keys = ("name", "kind", "stream", "situation", "method", "on", "material", "service")
         value_keys = (
             "coefficient",
             "resistance",
@@ -1044,7 +1055,14 @@ class _Reader:
                 found="a list",
                 expected="SI | US customary | a mapping of quantity: unit",
             )
-        return Report(fields.text("U on"), fields.place_of("U on"), default, by_quantity)
+        return Report(
+            fields.text("U on"),
+            fields.place_of("U on"),
+            default,
+            by_quantity,
+            fields.text("service"),
+            fields.place_of("service") if "service" in fields else None,
+        )
 
     def unit(self, node: Node) -> str:
         """The unit that a quantity is reported in."""

@@ -8,10 +8,10 @@ from dataclasses import replace
 
 import numpy as np
 
-from calcbook.chain.build import follows_temperature
 from calcbook.chain.checks import apply_acceptances, evaluate_check
 from calcbook.chain.circuit import branch_coefficient
-from calcbook.chain.findings import assumptions_of, celsius, jump_items, stream_findings, wall_checks
+from calcbook.chain.films import SATURATED_SIDES
+from calcbook.chain.findings import assumptions_of, celsius, jump_items, root_items, stream_findings, wall_checks
 from calcbook.chain.fluids import PropertyOperation
 from calcbook.chain.outcome import (
     BranchRow,
@@ -28,15 +28,32 @@ from calcbook.chain.outcome import (
     TermChain,
     TermRow,
 )
+from calcbook.chain.plausible import band_checks
+from calcbook.chain.pressure import drops, evaluate_pressure_drops, law_of, pressure_drop_checks, pressure_notes
 from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.solve import Solution, solve
-from calcbook.chain.types import CLEAN, CONDITIONS, SERVICE, Branch, Candidate, Chain, ChainStep, Group, Layer, OpenItem
+from calcbook.chain.types import (
+    CLEAN,
+    CONDITIONS,
+    SERVICE,
+    Branch,
+    Candidate,
+    Chain,
+    ChainStep,
+    Group,
+    Layer,
+    OpenItem,
+    follows_temperature,
+)
 from calcbook.faults import Collector, nearest_names, shown
 from calcbook.library import vocabulary
+from calcbook.library.operations import run
 from calcbook.quantities import QuantityFault, as_kind
 
 CONTROLLING_SHARE = 0.5
 PLACES_SPREAD = 0.2
+# Slopes below this part of U are the rounding of sums that cancel.
+NOISE = 1e-13
 OPPOSITE = {">=": 1.0, ">": 1.0, "<=": -1.0, "<": -1.0}
 
 
@@ -97,6 +114,7 @@ class _Analysis:
                 if self.collector:
                     return None
                 raise NotConverged(self.chain.calculation.number, name, condition)
+            evaluate_pressure_drops(self.chain, solution)
         results = self._results(solutions)
         checks = self._checks(name, solutions)
         for check in checks:
@@ -117,7 +135,8 @@ class _Analysis:
             checks=checks,
             criteria=criteria,
             assumptions=assumptions_of(self.chain, solutions),
-            open_items=(*self.chain.open_items, *state_items, *jump_items(self.chain, name, solutions)),
+            open_items=(*self.chain.open_items, *state_items, *jump_items(self.chain, name, solutions),
+                        *root_items(self.chain, name, inputs, solutions)),
             closure=self._closure(solutions),
             controlling=controlling,
             controlling_share=share,
@@ -193,6 +212,10 @@ class _Analysis:
                 put(f"R {element.name} {condition}", solution.number(table[f"R {element.name}"]), "area resistance",
                     f"resistance of {element.name} on the basis area, {condition}")
         self._stream_results(solutions[SERVICE], put)
+        for _, branch, drop in drops(self.chain):
+            for condition, solution in reversed(solutions.items()):
+                put(f"dp {branch.stream}_{condition}", solution.number(drop.total.coefficient), "pressure drop",
+                    f"pressure drop of {branch.stream}, {condition}")
         return results
 
     def _stream_results(self, solution: Solution, put) -> None:  # type: ignore[no-untyped-def]
@@ -290,6 +313,8 @@ class _Analysis:
                 for branch in element.branches:
                     steps += self._branch_steps(branch, solutions)
                     notes += _branch_notes(branch, solutions)
+                steps += self._pressure_steps(element, solutions)
+                notes += pressure_notes(self.chain, element, solutions)
             fresh = tuple({step.id: step for step in steps if step.id not in seen}.values())
             seen |= {step.id for step in fresh}
             chains.append(TermChain(element.name, _title(element), self._rows(fresh, solutions), tuple(notes)))
@@ -303,6 +328,19 @@ class _Analysis:
             self.used_cards |= {f"method {card.id}": card.digest_text for card in candidate.cards}
         return steps
 
+    def _pressure_steps(self, element: Group, solutions: Mapping[str, Solution]) -> list[ChainStep]:
+        """The steps of the pressure drops beside the films of a group, in both conditions."""
+        steps: list[ChainStep] = []
+        for group, _, drop in drops(self.chain):
+            if group is not element:
+                continue
+            steps += drop.choice_steps
+            for part in (*(law_of(drop, solutions[condition]) for condition in CONDITIONS), drop.total):
+                if part is not None:
+                    steps += part.steps
+                    self.used_cards |= {f"method {card.id}": card.digest_text for card in part.cards}
+        return steps
+
     def _properties(self, solutions: Mapping[str, Solution]) -> tuple[PropertyRow, ...]:
         """Properties of streams by place, as far as the chain asked for them."""
         rows = []
@@ -310,6 +348,7 @@ class _Analysis:
             bulk = self._property_row(state, "bulk", "", f"stream {state.name}", state.temperature, solutions[SERVICE])
             if bulk is not None:
                 rows.append(bulk)
+            rows += self._saturated_rows(state, solutions)
             for group in (self.chain.inner, self.chain.outer):
                 for branch in group.branches:
                     if branch.stream != state.name:
@@ -321,6 +360,23 @@ class _Analysis:
                             if row is not None:
                                 rows.append(row)
         return tuple(rows)
+
+    def _saturated_rows(self, state, solutions: Mapping[str, Solution]) -> list[PropertyRow]:  # type: ignore[no-untyped-def]
+        """Properties on the saturation line of a stream that changes phase."""
+        rows = []
+        for group in (self.chain.inner, self.chain.outer):
+            for branch in group.branches:
+                if branch.stream != state.name or not state.saturation:
+                    continue
+                for place, phase in SATURATED_SIDES.items():
+                    moves = place == "liquid film"
+                    at = f"{branch.name}/liquid film/T" if moves else state.saturation
+                    for condition in CONDITIONS if moves else ("",):
+                        row = self._property_row(state, place, condition, f"{branch.name}/{place}", at,
+                                                 solutions[condition or SERVICE])
+                        if row is not None:
+                            rows.append(replace(row, phase=phase, pressure=math.nan))
+        return rows
 
     def _property_row(self, state, place: str, condition: str, prefix: str, temperature: str, solution: Solution  # type: ignore[no-untyped-def]
                       ) -> PropertyRow | None:
@@ -348,7 +404,7 @@ class _Analysis:
                 continue
             for branch in element.branches:
                 limits += chosen(branch, solution).checks
-        return limits
+        return limits + pressure_drop_checks(self.chain, solution)
 
     def _checks(self, name: str, solutions: Mapping[str, Solution]) -> tuple[CheckResult, ...]:
         results = []
@@ -356,6 +412,7 @@ class _Analysis:
             solution = solutions[condition]
             results += [evaluate_check(check, solution, name, self.dimensions) for check in self._limits(solution)]
             results += wall_checks(self.chain, name, solution)
+            results += band_checks(self.chain, name, solution)
         return tuple(results)
 
     def _criteria(self, case: str, results: Mapping[str, Result], inputs: Mapping[str, np.ndarray],
@@ -418,7 +475,6 @@ class _Analysis:
         """Every other method of a film's situation, put in its place and the circuit closed again."""
         rows = []
         inputs = self.chain.case_inputs("")
-        reference = base.results["U_service"].value
         for group in (self.chain.inner, self.chain.outer):
             for branch in group.branches:
                 if branch.situation is None:
@@ -427,31 +483,45 @@ class _Analysis:
                 others = [candidate for candidate in (*branch.candidates, *branch.alternatives) if candidate is not used]
                 order = {method: place for place, method in enumerate(branch.situation.methods)}
                 others.sort(key=lambda candidate: order.get(candidate.method.id, len(order)))
-                rows += [self._cross_row(branch, used, other, inputs, reference) for other in others]
+                rows += [self._cross_row(branch, used, other, inputs, base) for other in others]
                 rows += [CrossRow(branch.name, method, "", "", False, math.nan, math.nan, math.nan, reason)
                          for method, reason in branch.unusable.items()]
         return tuple(rows)
 
     def _cross_row(self, branch: Branch, used: Candidate, other: Candidate, inputs: Mapping[str, np.ndarray],
-                   reference: float) -> CrossRow:
-        if not self.chain.has_temperatures and needs_temperatures(self.chain, branch, other):
-            return CrossRow(branch.name, other.method.id, other.method.title, other.method.family, False, math.nan, math.nan,
-                            math.nan, "it needs the temperature of the surface, and one bulk temperature is not stated")
-        solution = solve(self.chain, inputs, SERVICE, {branch.name: other})
+                   base: CaseOutcome) -> CrossRow:
+        reference = base.results["U_service"].value
         same = other.method.family == used.method.family
-        reason = ""
-        if not bool(np.all(solution.converged)):
-            reason = "does not close here"
+        if not self.chain.has_temperatures and needs_temperatures(self.chain, branch, other):
+            return CrossRow(branch.name, other.method.id, other.method.title, other.method.family, same, math.nan, math.nan,
+                            math.nan, "it needs the temperature of the surface, and one bulk temperature is not stated")
+        reason = self._out_of_range(other, self._at_solution(other, base.solutions[SERVICE]))
+        if reason:
+            return CrossRow(branch.name, other.method.id, other.method.title, other.method.family, same, math.nan,
+                            math.nan, math.nan, reason)
+        solution = solve(self.chain, inputs, SERVICE, {branch.name: other})
+        if bool(np.all(solution.converged)):
+            reason = self._out_of_range(other, solution)
         else:
-            failed = [evaluate_check(check, solution, "", self.dimensions) for check in other.checks]
-            failed = [check for check in failed if check.level in ("stop", "range")
-                      and check.state in ("outside", "not evaluable")]
-            if failed:
-                reason = f"outside its range: {failed[0].figure}, limit {failed[0].limit}"
+            reason = "does not close here"
         overall = solution.number(self.chain.results["U"])
         coefficient = solution.number(other.coefficient) if other.coefficient in solution.values else math.nan
         return CrossRow(branch.name, other.method.id, other.method.title, other.method.family, same, coefficient, overall,
                         overall / reference - 1.0, reason)
+
+    def _at_solution(self, other: Candidate, solution: Solution) -> Solution:
+        """A method's own figures at the surface that the used method gives: enough to see most ranges."""
+        values = dict(solution.values)
+        run([step for step in other.steps if step.id not in values], values)
+        return replace(solution, values=values)
+
+    def _out_of_range(self, other: Candidate, solution: Solution) -> str:
+        """The first range or stop limit of a method that is not held, in words."""
+        for limit in other.checks:
+            check = evaluate_check(limit, solution, "", self.dimensions)
+            if check.level in ("stop", "range") and check.state in ("outside", "not evaluable"):
+                return f"outside its range: {check.figure}, limit {check.limit}"
+        return ""
 
     def _closure(self, solutions: Mapping[str, Solution]) -> tuple[ClosureRow, ...]:
         """Heat flow through each element from its two temperatures, summed drops, U·A on each surface."""
@@ -497,7 +567,7 @@ class _Analysis:
             temperature = item.kind.scale == "point" or item.kind.name == "temperature difference"
             move = 1.0 if temperature else 0.01 * base.inputs[key]
             change = float(np.asarray(slope).ravel()[0]) * move
-            if math.isfinite(change) and change != 0.0:
+            if math.isfinite(change) and abs(change) > NOISE * abs(reference):
                 rows.append(SensitivityRow(item, "1 K" if temperature else "1 %", change, change / reference))
         order = {key: place for place, key in enumerate(self.chain.inputs)}
         return tuple(sorted(rows, key=lambda row: (-float(f"{abs(row.change):.9g}"), order[row.input.id])))

@@ -91,6 +91,11 @@ def _flow(engine: Engine, samples: Array) -> Array:
     return _root(excess, low, high)
 
 
+def excess_at(engine: Engine, flow: Array) -> Array:
+    """For a heat flow of every sample, the summed drops that carry it less the whole difference."""
+    return _drops(engine, engine.everything, flow).sum(axis=0) + flow * engine.still - engine.difference
+
+
 def _flow_bounds(engine: Engine, samples: Array, excess: Excess) -> tuple[Array, Array]:
     """Two heat flows with the answer between them."""
     difference = engine.difference[samples]

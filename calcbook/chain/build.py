@@ -2,15 +2,16 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
 from dataclasses import replace
 
 from calcbook.calcfile import Calculation
 from calcbook.calcfile.calculation import Derived, Term, Value
 from calcbook.calcfile.links import CURRENT
 from calcbook.chain.films import FilmScope
-from calcbook.chain.fins import FinnedSide, lay_out_fins, lay_out_fins_layer
+from calcbook.chain.fins import FinnedSide, check_finned_situation, lay_out_fins, lay_out_fins_layer
+from calcbook.chain.pressure import asked_symbols, lay_out_pressure_drop
 from calcbook.chain.scope import Scope
+from calcbook.chain.services import check_services
 from calcbook.chain.streams import lay_out_stream
 from calcbook.chain.surfaces import Shape, Wall, lay_out_shape
 from calcbook.chain.types import (
@@ -25,6 +26,7 @@ from calcbook.chain.types import (
     Input,
     Layer,
     StreamState,
+    follows_temperature,
 )
 from calcbook.faults import Collector, Faults, nearest_names, shown
 from calcbook.formulas import Relation, RelationFault, dimension, parse_expression
@@ -75,6 +77,7 @@ class _Builder:
             if calculation.report.u_on else None
         self._check_temperatures(elements)
         self._assumptions_of_engineer()
+        check_services(calculation, self.collector)
         if self.collector or basis is None or elements is None:
             self._mark_unused()
             return None
@@ -189,6 +192,10 @@ class _Builder:
                 self.scope.used_in[symbol] = []
 
     def _assumptions_of_engineer(self) -> None:
+        for revision in self.calculation.revisions:
+            if revision.reason.casefold().strip(" .…") in ("to be written", "tbd", ""):
+                self.scope.open(f"revision {revision.revision} / reason", "revision",
+                                f"The reason of revision {revision.revision} is to be written.")
         for item in self.calculation.assumptions:
             if not item.is_verified:
                 self.scope.open(f"assumption {item.id}", "assumption", f"Assumption {item.id} is not verified.")
@@ -505,11 +512,17 @@ class _Builder:
             return None
         self.scope.cards[f"situation {situation.id}"] = situation.digest_text
         dimensions, moved = self._wetted(shape, side)
-        if self.finned is not None and self.finned.side == side:
+        has_fins = self.finned is not None and self.finned.side == side
+        if not shape.fins_failed and not check_finned_situation(self.scope, term, situation, has_fins):
+            return None
+        if self.finned is not None and has_fins:
             dimensions = {**dimensions, **self.finned.figures}
         film = FilmScope(self.scope, self.library, term, group, dimensions, stream, situation, deposit_surface=moved)
         self._check_with(term, situation, film)
         branch = film.branch()
+        if branch is not None:
+            drop, reason = lay_out_pressure_drop(film)
+            branch = replace(branch, pressure_drop=drop, no_pressure_drop=reason)
         self.checks += film.vapour_checks()
         for candidate in branch.candidates if branch is not None else ():
             self._card_state(candidate.method.id, candidate.method.state.status, candidate.method.state.successor, term)
@@ -554,6 +567,7 @@ class _Builder:
         for method in methods:
             for item in self.library.program(method).needs:
                 asked |= {item.need.symbol, item.need.quantity.name}
+        asked |= asked_symbols(film)
         for key, value in term.with_values.items():
             if key not in asked:
                 self.collector.add("key-unknown", value.place, f"`{shown(key)}` is asked for by no card of `{term.name}`",
@@ -695,32 +709,13 @@ STATED = Method(
 )
 
 
-def follows_temperature(element: Element, forced: Mapping[str, Candidate] | None = None) -> bool:
-    """Whether an element's resistance depends on its own temperatures or flux.
-
-    ``forced`` holds candidates that stand in place of a film's own. Fins follow their film besides.
-    """
-    if isinstance(element, Layer):
-        return bool(element.first_temperature)
-    if any(branch.reference != element.bulk for branch in element.branches):
-        return True
-    moving = {element.surface_temperature, element.flux}
-    if any(bound in moving for branch in element.branches for row in branch.choice for bound in row.inputs.values()):
-        return True
-    return any(
-        bound in moving
-        for branch in element.branches
-        for candidate in ((forced[branch.name],) if forced and branch.name in forced else branch.candidates)
-        for step in (*candidate.steps, *branch.choice_steps)
-        for bound in step.inputs.values()
-    )
-
-
 def _steps_of(element: Element) -> tuple[ChainStep, ...]:
     if isinstance(element, Layer):
         return element.steps
-    return tuple(step for branch in element.branches for candidate in (*branch.candidates, *branch.alternatives)
-                 for step in (*candidate.steps, *branch.choice_steps))
+    films = tuple(step for branch in element.branches for candidate in (*branch.candidates, *branch.alternatives)
+                  for step in (*candidate.steps, *branch.choice_steps))
+    drops = tuple(branch.pressure_drop for branch in element.branches if branch.pressure_drop is not None)
+    return (*films, *(step for drop in drops for step in drop.steps))
 
 
 def _kind_of_dimension(dim: tuple, reading: str) -> QuantityKind:

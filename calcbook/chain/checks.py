@@ -33,9 +33,24 @@ def evaluate_check(check: ChainCheck, solution: Solution, case: str, dimensions:
         state = "within" if bool(evaluate(check.limit.that, arguments)) else "outside"
     local = {symbol: dimensions.get(bound, DIMENSIONLESS) for symbol, bound in check.inputs.items()}
     figure, limit, value, unit = _figure_and_limit(check.limit.that.tree, arguments, local, state == "not evaluable")
+    figure, limit = _in_words(check, figure, limit, value)
     return CheckResult(check.id, check.owner, check.card, solution.condition, case, write(check.limit.that), figure,
                        limit, value, unit, check.limit.level, state, check.limit.because, check.limit.source,
                        check.limit.standing)
+
+
+def _in_words(check: ChainCheck, figure: str, limit: str, value: float) -> tuple[str, str]:
+    """The texts of a limit on a choice: the words chosen and wanted instead of their places in the choice."""
+    tree = check.limit.that.tree
+    if not isinstance(tree, Compare) or len(tree.rest) != 1 or not math.isfinite(value):
+        return figure, limit
+    operator, wanted = tree.rest[0]
+    mark = f"word {wanted.name} of " if isinstance(wanted, Symbol) else ""
+    bound = check.inputs.get(wanted.name, "") if isinstance(wanted, Symbol) else ""
+    if not mark or mark not in bound:
+        return figure, limit
+    words = bound.partition(mark)[2].split(",")
+    return f"{write(tree.first)} = {words[int(value)]}", f"{OPERATORS[operator]} {write(wanted)}"
 
 
 def _counts(relation, inputs: Mapping[str, str], values: Mapping[str, np.ndarray]) -> bool:  # type: ignore[no-untyped-def]

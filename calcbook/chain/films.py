@@ -15,7 +15,7 @@ from calcbook.library import Library, Program
 from calcbook.library.cards import Limit, Method, Need, Situation
 from calcbook.library.programs import ProgramStep
 from calcbook.library.reading import choice_number, vocabulary
-from calcbook.quantities import DIMENSIONLESS
+from calcbook.quantities import DIMENSIONLESS, unit_display
 
 PROPERTY_SYMBOLS = {
     "rho": "density",
@@ -243,7 +243,9 @@ class FilmScope:
             return self.dimensions[need.quantity.name]
         if need.absent is not None:
             name = f"{self.owner}/{need.symbol} absent"
-            self.scope.assume(f"{self.owner}/{need.symbol}", f"{need.quantity.name} {need.symbol} is taken as {need.absent}.",
+            unit = "" if need.quantity.unit == "1" else f" {unit_display(need.quantity.unit)}"
+            self.scope.assume(f"{self.owner}/{need.symbol}",
+                              f"{need.quantity.name} {need.symbol} is taken as {need.absent}{unit}.",
                               "nothing is stated", self.owner)
             return self.scope.constant(name, float(need.absent), need.quantity.dimension)
         return ""
@@ -391,6 +393,9 @@ class FilmScope:
                 inputs = self.bind(group.relation, place)
                 if inputs is None:
                     return ""
+                only = group.relation.text.strip()
+                if only in inputs:
+                    return inputs[only]
                 title = name if place == "bulk" else f"{name} at {place} temperature"
                 return self.scope.relation_step(f"{self.owner}/{group.symbol}{mark}", f"{group.symbol}{mark}", title,
                                                 self.owner, group.relation, inputs, self.situation.id, name,
@@ -614,7 +619,7 @@ def _kind_of_symbol(symbol: str):  # type: ignore[no-untyped-def]
     for kind in vocabulary().values():
         if kind.symbol == symbol and kind.dimension == DIMENSIONLESS and not kind.flag and kind.name not in PLAIN:
             return kind
-    return next((kind for kind in vocabulary().values() if kind.symbol == symbol and symbol in ("h", "R", "q")), None)
+    return next((kind for kind in vocabulary().values() if kind.symbol == symbol and symbol in ("h", "R", "q", "q_chf", "dp")), None)
 
 
 def _words(need: Need) -> bool:

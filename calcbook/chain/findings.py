@@ -5,8 +5,11 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping
 
+import numpy as np
+
 from calcbook.chain.checks import apart
 from calcbook.chain.outcome import CheckResult
+from calcbook.chain.roots import other_heat_flows
 from calcbook.chain.solve import Solution
 from calcbook.chain.types import CONDITIONS, SERVICE, Branch, Chain, Group, OpenItem, RunnerAssumption, StreamState
 from calcbook.faults import Collector
@@ -43,6 +46,9 @@ def stream_findings(chain: Chain, case: str, collector: Collector) -> tuple[Open
         if fluid is None:
             continue
         temperature = float(values[state.temperature])
+        if state.saturation and math.isnan(temperature):
+            _report_no_saturation(state, values, collector, case)
+            continue
         for finding in fluid.check_state(temperature, state.phase or None):
             where = f"case {case}: " if case else ""
             if finding.level == "fault":
@@ -53,6 +59,14 @@ def stream_findings(chain: Chain, case: str, collector: Collector) -> tuple[Open
     return tuple(items)
 
 
+def _report_no_saturation(state: StreamState, values: Mapping[str, object], collector: Collector, case: str) -> None:
+    pressure = float(values[state.pressure])  # type: ignore[arg-type]
+    where = f"case {case}: " if case else ""
+    collector.add("saturation-unknown", state.place,
+                  f"{where}stream {state.name}: {state.fluid.text.name} has no saturation temperature at its pressure",
+                  found=f"{number_text(pressure / 1e5, 5)} bar", expected="a pressure between triple and critical point")
+
+
 def _check_directions(chain: Chain, values: Mapping[str, object], collector: Collector, case: str) -> None:
     """A film that condenses has the colder side opposite, a film that boils the hotter one."""
     for here, opposite in ((chain.inner, chain.outer), (chain.outer, chain.inner)):
@@ -61,7 +75,7 @@ def _check_directions(chain: Chain, values: Mapping[str, object], collector: Col
             if not change or branch.reference not in values or opposite.bulk not in values:
                 continue
             own, other = float(values[branch.reference]), float(values[opposite.bulk])  # type: ignore[arg-type]
-            if (own > other) if change == "condensing" else (own < other):
+            if math.isnan(own) or math.isnan(other) or (own > other if change == "condensing" else own < other):
                 continue
             where = f"case {case}: " if case else ""
             collector.add("phase-change-direction", chain.streams[branch.stream].place,
@@ -224,6 +238,22 @@ def _direction(group: Group, branch: Branch, solution: Solution) -> tuple[str, s
     if surface == bulk:
         return "the direction of heat flow is undetermined.", figures
     return f"the fluid is {'heated' if surface > bulk else 'cooled'}.", figures
+
+
+def root_items(chain: Chain, case: str, inputs: Mapping[str, np.ndarray], solutions: Mapping[str, Solution]
+               ) -> tuple[OpenItem, ...]:
+    """Open items for a circuit that closes at more than one heat flow."""
+    items = []
+    for condition in reversed(CONDITIONS):
+        where = f"case {case}, {condition}" if case else condition
+        others = other_heat_flows(chain, inputs, condition, solutions[condition])
+        if others:
+            taken = number_text(solutions[condition].number("solution/Q"), 4)
+            shown = ", ".join(number_text(other, 3) for other in others)
+            items.append(OpenItem(f"circuit / heat flows / {where}", "jump",
+                                  f"The circuit ({where}) closes at more than one heat flow: {taken} W is taken, it"
+                                  f" closes near {shown} W as well."))
+    return tuple(items)
 
 
 def jump_items(chain: Chain, case: str, solutions: Mapping[str, Solution]) -> tuple[OpenItem, ...]:

@@ -19,7 +19,7 @@ from calcbook.chain.types import ChainCheck, ChainStep, Group, Layer, Surface
 from calcbook.faults import Place, nearest_names, shown
 from calcbook.formulas import parse_expression
 from calcbook.library import Library, vocabulary
-from calcbook.library.cards import Limit
+from calcbook.library.cards import Limit, Situation
 
 EFFICIENCIES = {
     "annular": ("fin-annular-bessel", "fin-annular-schmidt"),
@@ -63,7 +63,12 @@ def lay_out_fins(scope: Scope, terms: tuple[Term, ...], shape: Shape) -> tuple[S
     tip = {"tip": Value(fins.texts["tip"], fins.place_of("tip"))} if "tip" in fins.texts else {}
     own = Term(f"fins of {film.name}", "fins", fins.place, texts, fins.text_places, values, tip)
     if any(own.name in (other.name, *(branch.name for branch in other.branches)) for other in terms):
-        scope.collector.add("term-twice", film.place, f"`{own.name}` is the name of the fins", expected="another name for the term")
+        scope.collector.add(
+            "term-twice",
+            film.place,
+            f"`{own.name}` is the name of the fins",
+            expected="another name for the term",
+        )
         return replace(shape, fins_failed=True), None
     return _Areas(scope, shape, side, film, own).laid_out()
 
@@ -74,26 +79,45 @@ def _fits(scope: Scope, found: list[tuple[Term, Term]], shape: Shape, side: str)
     assert film.fins is not None
 
     def refuse(place: Place, message: str, expected: str) -> bool:
-        scope.collector.add("fins-not-here", place, message, found=f"{side} of a {shape.name}", expected=expected)
+        scope.collector.add(
+            "fins-not-here", place, message, found=f"{side} of a {shape.name}", expected=expected
+        )
         return False
 
     if len(found) > 1:
         return refuse(found[1][1].place_of("fins"), "films on both sides have fins", "fins on one film")
     if term is not film:
-        return refuse(film.place_of("fins"), "a film beside another way for heat has fins",
-                      "fins on a film that acts alone, its coefficient with the radiation in it")
+        return refuse(
+            film.place_of("fins"),
+            "a film beside another way for heat has fins",
+            "fins on a film that acts alone, its coefficient with the radiation in it",
+        )
     if shape.name == "sphere" or not shape.walls:
-        return refuse(film.place_of("fins"), "fins stand on the wall of a tube or plane", "a tube or a plane with a wall")
+        return refuse(
+            film.place_of("fins"),
+            "fins stand on the wall of a tube or plane",
+            "a tube or a plane with a wall",
+        )
     if film.fins.shape == "annular" and (shape.name != "tube" or side == "inside"):
-        return refuse(film.fins.place_of("shape"), "annular fins stand on the outside of a tube", "shape: straight")
+        return refuse(
+            film.fins.place_of("shape"), "annular fins stand on the outside of a tube", "shape: straight"
+        )
     if film.fins.shape not in EFFICIENCIES:
         return False
     by_count = film.fins.shape == "straight" and shape.name == "tube"
     if "count" in film.fins.values and not by_count:
-        return refuse(film.fins.place_of("count"), "only straight fins around a tube are counted", "pitch: … with its unit")
+        return refuse(
+            film.fins.place_of("count"),
+            "only straight fins around a tube are counted",
+            "pitch: … with its unit",
+        )
     if not {"pitch", "count"} & set(film.fins.values):
-        scope.collector.add("need-missing", film.fins.place, f"the fins of `{film.name}` have no pitch",
-                            expected="pitch: … with its unit" + (", or count: … around the tube" if by_count else ""))
+        scope.collector.add(
+            "need-missing",
+            film.fins.place,
+            f"the fins of `{film.name}` have no pitch",
+            expected="pitch: … with its unit" + (", or count: … around the tube" if by_count else ""),
+        )
         return False
     return True
 
@@ -112,24 +136,37 @@ class _Areas:
         fins = self.film.fins
         assert fins is not None
         kinds = {"height": "fin height", "thickness": "fin thickness", "pitch": "fin pitch", "count": "fins"}
-        figures = {kind: self.scope.value(fins.values.get(key), kind, self.own.name, key) for key, kind in kinds.items()}
+        figures = {
+            kind: self.scope.value(fins.values.get(key), kind, self.own.name, key)
+            for key, kind in kinds.items()
+        }
         figures = {kind: name for kind, name in figures.items() if name}
         if not {"fin height", "fin thickness"} <= set(figures):
             return replace(self.shape, fins_failed=True), None
         bare = self.shape.surfaces[self.shape.bare(self.side)]
-        unfinned, area = self._annular(figures, bare) if fins.shape == "annular" else self._straight(figures, bare)
-        total = self._step("A_tf", "area, total finned", "A_f + A_u", {"A_f": area, "A_u": unfinned}, "total finned area")
+        unfinned, area = (
+            self._annular(figures, bare) if fins.shape == "annular" else self._straight(figures, bare)
+        )
+        total = self._step(
+            "A_tf", "area, total finned", "A_f + A_u", {"A_f": area, "A_u": unfinned}, "total finned area"
+        )
         figures |= {"fin area": area, "total finned area": total}
-        shape = replace(self.shape, surfaces=(*self.shape.surfaces, Surface("total finned", total, "")),
-                        finned_side=self.side)
-        self.scope.assume(f"{self.own.name}/surfaces", f"Outside and bare are the {bare.name} surface of the wall without its fins."
-                          if self.side == "outside" else "Inside and bare are the surface of the wall without its fins.",
-                          "fins are stated on this side", self.own.name)
+        shape = replace(
+            self.shape,
+            surfaces=(*self.shape.surfaces, Surface("total finned", total, "")),
+            finned_side=self.side,
+        )
+        self.scope.assume(
+            f"{self.own.name}/surfaces",
+            f"The surfaces {self.side} and bare are one: the wall without its fins.",
+            "fins are stated on this side",
+            self.own.name,
+        )
         return shape, FinnedSide(self.side, self.film, fins, self.own, figures, bare.area, unfinned)
 
     @property
     def _tip(self) -> str:
-        """What a tip that exchanges heat adds to the height: half the thickness, as the efficiency takes it."""
+        """What a tip that exchanges heat adds to the height: half the thickness, as for the efficiency."""
         tip = self.own.with_values.get("tip")
         return " + t_f/2" if tip is None or tip.text == "convective" else ""
 
@@ -140,43 +177,112 @@ class _Areas:
     def _annular(self, figures: dict[str, str], bare: Surface) -> tuple[str, str]:
         along = self._along()
         figures["fin root diameter"] = bare.diameter
-        figures["fin tip diameter"] = self._step("d_f", "tip diameter of a fin", "d_r + 2*L_f",
-                                                 {"d_r": bare.diameter, "L_f": figures["fin height"]}, "fin tip diameter")
-        figures["fins"] = self._step("n_fin", "fins of one tube", "L/p_f", {"L": along["L"], "p_f": figures["fin pitch"]}, "fins")
+        figures["fin tip diameter"] = self._step(
+            "d_f",
+            "tip diameter of a fin",
+            "d_r + 2*L_f",
+            {"d_r": bare.diameter, "L_f": figures["fin height"]},
+            "fin tip diameter",
+        )
+        figures["fins"] = self._step(
+            "n_fin", "fins of one tube", "L/p_f", {"L": along["L"], "p_f": figures["fin pitch"]}, "fins"
+        )
         inputs = {"n_fin": figures["fins"], "N": along["N"], "t_f": figures["fin thickness"]}
         tip = f"d_f/2{self._tip}"
-        area = self._step("A_f", "area, fins", f"2*pi*(({tip})**2 - (d_r/2)**2)*n_fin*N",
-                          inputs | {"d_f": figures["fin tip diameter"], "d_r": bare.diameter}, "fin area")
-        unfinned = self._step("A_u", "area, unfinned", "pi*d_r*(L - n_fin*t_f)*N",
-                              inputs | {"d_r": bare.diameter, "L": along["L"]}, "area")
+        area = self._step(
+            "A_f",
+            "area, fins",
+            f"2*pi*(({tip})**2 - (d_r/2)**2)*n_fin*N",
+            inputs | {"d_f": figures["fin tip diameter"], "d_r": bare.diameter},
+            "fin area",
+        )
+        unfinned = self._step(
+            "A_u",
+            "area, unfinned",
+            "pi*d_r*(L - n_fin*t_f)*N",
+            inputs | {"d_r": bare.diameter, "L": along["L"]},
+            "area",
+        )
         return unfinned, area
 
     def _straight(self, figures: dict[str, str], bare: Surface) -> tuple[str, str]:
         height, thickness = figures["fin height"], figures["fin thickness"]
         if self.shape.name == "plane":
             inputs = {"t_f": thickness, "p_f": figures["fin pitch"], "A": bare.area}
-            area = self._step("A_f", "area, fins", f"2*(L_f{self._tip})/p_f*A", inputs | {"L_f": height}, "fin area")
+            area = self._step(
+                "A_f", "area, fins", f"2*(L_f{self._tip})/p_f*A", inputs | {"L_f": height}, "fin area"
+            )
             return self._step("A_u", "area, unfinned", "(1 - t_f/p_f)*A", inputs, "area"), area
         if "fins" not in figures:
-            figures["fins"] = self._step("n_fin", "fins around one tube", "pi*d_r/p_f",
-                                         {"d_r": bare.diameter, "p_f": figures["fin pitch"]}, "fins")
+            figures["fins"] = self._step(
+                "n_fin",
+                "fins around one tube",
+                "pi*d_r/p_f",
+                {"d_r": bare.diameter, "p_f": figures["fin pitch"]},
+                "fins",
+            )
         inputs = {"n_fin": figures["fins"], "t_f": thickness, **self._along()}
-        area = self._step("A_f", "area, fins", f"2*(L_f{self._tip})*L*n_fin*N", inputs | {"L_f": height}, "fin area")
-        unfinned = self._step("A_u", "area, unfinned", "(pi*d_r - n_fin*t_f)*L*N", inputs | {"d_r": bare.diameter}, "area")
+        area = self._step(
+            "A_f", "area, fins", f"2*(L_f{self._tip})*L*n_fin*N", inputs | {"L_f": height}, "fin area"
+        )
+        unfinned = self._step(
+            "A_u", "area, unfinned", "(pi*d_r - n_fin*t_f)*L*N", inputs | {"d_r": bare.diameter}, "area"
+        )
         return unfinned, area
 
     def _step(self, symbol: str, title: str, text: str, inputs: dict[str, str], kind: str) -> str:
         relation = parse_expression(text)
-        return self.scope.relation_step(f"geometry/{symbol}", symbol, title, "geometry", relation,
-                                        {name: inputs[name] for name in relation.symbols}, "fins", kind)
+        return self.scope.relation_step(
+            f"geometry/{symbol}",
+            symbol,
+            title,
+            "geometry",
+            relation,
+            {name: inputs[name] for name in relation.symbols},
+            "fins",
+            kind,
+        )
+
+
+def check_finned_situation(scope: Scope, term: Term, situation: Situation, finned: bool) -> bool:
+    """That a situation for finned surfaces takes its figures from the fins of its film; a fault where not."""
+    needs = [need for need in situation.needs if need.quantity.name in FINNED_NEEDS]
+    if needs and not finned:
+        scope.collector.add(
+            "need-missing",
+            term.place,
+            f"`{term.name}` acts on fins, and none are stated",
+            expected="fins: {shape: …, height: …, thickness: …, pitch: …, material: …} on the film",
+        )
+        return False
+    for need in needs:
+        for key in (need.symbol, need.quantity.name):
+            if key in term.with_values:
+                scope.collector.add(
+                    "key-conflict",
+                    term.with_values[key].place,
+                    f"`{key}` is stated by the fins of `{term.name}`",
+                    found=f"`{key}` under `with:`",
+                    expected="it under `fins:` alone",
+                )
+                return False
+    return True
 
 
 # --- the term in series -----------------------------------------------------------------------------
 
 
-def lay_out_fins_layer(scope: Scope, library: Library, finned: FinnedSide, shape: Shape, group: Group,
-                       fouling: Sequence[Layer], conductivity: str, temperatures: tuple[str, str]) -> Layer | None:
-    """The fins as a term in series with their film; ``conductivity`` is the id of k, ``temperatures`` those it
+def lay_out_fins_layer(
+    scope: Scope,
+    library: Library,
+    finned: FinnedSide,
+    shape: Shape,
+    group: Group,
+    fouling: Sequence[Layer],
+    conductivity: str,
+    temperatures: tuple[str, str],
+) -> Layer | None:
+    """The fins as a term in series with their film; ``conductivity`` is the id of k, ``temperatures`` what it
     is the mean between (empty where it is stated). None after a fault."""
     return _Series(scope, library, finned, shape, group).layer(fouling, conductivity, temperatures)
 
@@ -189,7 +295,9 @@ class _Series:
     shape: Shape
     group: Group
 
-    def layer(self, fouling: Sequence[Layer], conductivity: str, temperatures: tuple[str, str]) -> Layer | None:
+    def layer(
+        self, fouling: Sequence[Layer], conductivity: str, temperatures: tuple[str, str]
+    ) -> Layer | None:
         method = self._method()
         if not method:
             return None
@@ -201,28 +309,59 @@ class _Series:
         if single is None or overall is None:
             return None
         efficiency = overall[0]
-        whole = self._step("R_o", "film, fouling and fins on the total finned area", "R_c/eta_o",
-                           {"R_c": series, "eta_o": efficiency}, "area resistance")
-        resistance = self._step("R", "fins on the total finned area", "R_o - R_c", {"R_o": whole, "R_c": series},
-                                "area resistance")
+        whole = self._step(
+            "R_o",
+            "film, fouling and fins on the total finned area",
+            "R_c/eta_o",
+            {"R_c": series, "eta_o": efficiency},
+            "area resistance",
+        )
+        resistance = self._step(
+            "R",
+            "fins on the total finned area",
+            "R_o - R_c",
+            {"R_o": whole, "R_c": series},
+            "area resistance",
+        )
         checks = (*single[1], *overall[1], *self._own_checks())
         steps = self._own_steps([resistance, *(bound for check in checks for bound in check.inputs.values())])
         first, second = temperatures
-        return Layer(name, "fins", surface, resistance, steps, first, second, method, checks, self.group.name, efficiency)
+        return Layer(
+            name,
+            "fins",
+            surface,
+            resistance,
+            steps,
+            first,
+            second,
+            method,
+            checks,
+            self.group.name,
+            efficiency,
+        )
 
     def _method(self) -> str:
-        """The method of the fin efficiency: the file's, or the exact one of the shape, said in the record."""
+        """The method of the fin efficiency: the one named, or the exact one of the shape, which is said."""
         fins = self.finned.fins
         allowed = EFFICIENCIES[fins.shape]
         stated = fins.texts.get("method", "")
         if stated and stated not in allowed:
-            self.scope.collector.add("method-unknown", fins.place_of("method"), f"`{shown(stated)}` is no method for"
-                                     f" {fins.shape} fins", found=shown(stated), expected=", ".join(allowed),
-                                     nearest=nearest_names(stated, allowed))
+            self.scope.collector.add(
+                "method-unknown",
+                fins.place_of("method"),
+                f"`{shown(stated)}` is no method for {fins.shape} fins",
+                found=shown(stated),
+                expected=", ".join(allowed),
+                nearest=nearest_names(stated, allowed),
+            )
             return ""
         if not stated:
-            self.scope.assume(f"{self.finned.name}/method", f"The fin efficiency is taken from {allowed[0]}.",
-                              f"exact for {fins.shape} fins of constant thickness; none is named", self.finned.name)
+            self.scope.assume(
+                f"{self.finned.name}/method",
+                f"The fin efficiency is taken from {allowed[0]}.",
+                f"exact for {fins.shape} fins of constant thickness; none is named",
+                self.finned.name,
+            )
         return stated or allowed[0]
 
     def _combined(self, fouling: Sequence[Layer]) -> tuple[str, str]:
@@ -235,12 +374,21 @@ class _Series:
             symbol = f"R_f{number}" if len(fouling) > 1 else "R_f"
             own, area = layer.resistance, self.shape.surfaces[layer.surface].area
             if area != total:
-                own = self._step(symbol, f"{layer.name} on the total finned area", "R*A_tf/A",
-                                 {"R": layer.resistance, "A_tf": total, "A": area}, "area resistance")
+                own = self._step(
+                    symbol,
+                    f"{layer.name} on the total finned area",
+                    "R*A_tf/A",
+                    {"R": layer.resistance, "A_tf": total, "A": area},
+                    "area resistance",
+                )
             parts.append(symbol)
             inputs[symbol] = own
-        series = self._step("R_c", "film and fouling on the total finned area", " + ".join(parts), inputs, "area resistance")
-        combined = self._step("h_c", "coefficient of film and fouling combined", "1/R_c", {"R_c": series}, "film coefficient")
+        series = self._step(
+            "R_c", "film and fouling on the total finned area", " + ".join(parts), inputs, "area resistance"
+        )
+        combined = self._step(
+            "h_c", "coefficient of film and fouling combined", "1/R_c", {"R_c": series}, "film coefficient"
+        )
         return series, combined
 
     def _card(self, method: str, figures: dict[str, str]) -> tuple[str, tuple[ChainCheck, ...]] | None:
@@ -261,23 +409,44 @@ class _Series:
     def _own_checks(self) -> tuple[ChainCheck, ...]:
         """That the fins leave a gap (and a bore), and that the film's situation knows fins."""
         finned = self.finned
-        figures = {"A_u": finned.unfinned_area, "A": finned.bare_area, "A_tf": finned.figures["total finned area"]}
+        figures = {
+            "A_u": finned.unfinned_area,
+            "A": finned.bare_area,
+            "A_tf": finned.figures["total finned area"],
+        }
         checks = [self._check("gap", "A_u/A > 0", "stop", "the fins leave part of the surface free", figures)]
         if finned.side == "inside" and self.shape.name == "tube":
             inner = {"L_f": finned.figures["fin height"], "d_i": self.shape.surfaces[0].diameter}
             checks.append(self._check("bore", "2*L_f < d_i", "stop", "the fins leave a bore", inner))
         situation = self.group.branches[0].situation
         if situation is not None and not any(need.quantity.name in FINNED_NEEDS for need in situation.needs):
-            checks.append(self._check("plain surface", "A_tf/A <= 1", "caution",
-                                      f"the methods of {situation.id} are for a surface without fins", figures))
+            checks.append(
+                self._check(
+                    "plain surface",
+                    "A_tf/A <= 1",
+                    "caution",
+                    f"the methods of {situation.id} are for a surface without fins",
+                    figures,
+                )
+            )
         return tuple(checks)
 
     def _check(self, name: str, that: str, level: str, because: str, figures: dict[str, str]) -> ChainCheck:
         relation = parse_expression(that)
-        limit = Limit(name, relation, level, because, "common practice", "common practice", self.finned.fins.place)
+        limit = Limit(
+            name, relation, level, because, "common practice", "common practice", self.finned.fins.place
+        )
         inputs = {symbol: figures[symbol] for symbol in relation.symbols}
         return ChainCheck(f"{self.finned.name} / fins / {name}", self.finned.name, "fins", limit, inputs)
 
     def _step(self, symbol: str, title: str, text: str, inputs: dict[str, str], kind: str) -> str:
-        return self.scope.relation_step(f"{self.finned.name}/{symbol}", symbol, title, self.finned.name, parse_expression(text),
-                                        inputs, "fins", kind)
+        return self.scope.relation_step(
+            f"{self.finned.name}/{symbol}",
+            symbol,
+            title,
+            self.finned.name,
+            parse_expression(text),
+            inputs,
+            "fins",
+            kind,
+        )

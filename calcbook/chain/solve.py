@@ -13,9 +13,18 @@ from dataclasses import dataclass, field
 
 import numpy as np
 
-from calcbook.chain.build import follows_temperature
 from calcbook.chain.circuit import branch_coefficient
-from calcbook.chain.types import CLEAN, SERVICE_FLAG, Branch, Candidate, Chain, ChainStep, Group, Layer
+from calcbook.chain.types import (
+    CLEAN,
+    SERVICE_FLAG,
+    Branch,
+    Candidate,
+    Chain,
+    ChainStep,
+    Group,
+    Layer,
+    follows_temperature,
+)
 from calcbook.formulas import evaluate
 from calcbook.library.operations import Slopes, run
 
@@ -175,7 +184,7 @@ class Engine:
         self.values: dict[str, Array] = dict(chain.constants)  # type: ignore[arg-type]
         self.values[SERVICE_FLAG] = np.asarray(float(condition != CLEAN))
         self.values.update(inputs)
-        # Fins follow the coefficient of their film: outside they are closed after it, though they stand before it.
+        # Fins follow the coefficient of their film: outside they are closed after it and stand before it.
         follows = {element.name for element in chain.elements if follows_temperature(element, forced)}
         moving = [
             element

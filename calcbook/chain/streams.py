@@ -73,7 +73,10 @@ def _saturation(scope: Scope, stream: Stream, fluid: FluidSource | None, pressur
                                 expected="pressure: … and phase: liquid or gas on the stream")
     if not pressure or not stream.phase:
         return ""
-    return scope.step(f"stream {stream.name}/T_sat", "T_sat", "saturation temperature", f"stream {stream.name}",
+    # A second saturated stream takes a symbol of its own, so that the heat flux names both.
+    number = sum(isinstance(step.operation, BoilingOperation) for step in scope.steps.values()) + 1
+    symbol = "T_sat" if number == 1 else f"T_sat{number}"
+    return scope.step(f"stream {stream.name}/T_sat", symbol, "saturation temperature", f"stream {stream.name}",
                       BoilingOperation(fluid), {"p": pressure}, _provider(scope, fluid, stream),
                       vocabulary()["saturation temperature"])
 

@@ -109,12 +109,33 @@ class ChoiceRow:
 
 
 @dataclass(frozen=True, slots=True)
+class PressureDrop:
+    """How a film's stream loses pressure: friction laws, the choice between them, and the sum that gives dp.
+
+    ``factor`` is the id under which the chosen friction factor stands; it and ``laws`` are empty where the
+    card of the sum has its own law. The coefficient of a law is its friction factor, that of ``total`` is dp.
+    """
+
+    factor: str
+    laws: tuple[Candidate, ...]
+    choice: tuple[ChoiceRow, ...]
+    choice_steps: tuple[ChainStep, ...]
+    total: Candidate
+
+    @property
+    def steps(self) -> tuple[ChainStep, ...]:
+        """Every step of every law, in order."""
+        return (*self.choice_steps, *(step for part in (*self.laws, self.total) for step in part.steps))
+
+
+@dataclass(frozen=True, slots=True)
 class Branch:
     """One way for heat between a surface and a temperature: a film, a stated coefficient, radiation.
 
     ``reference`` is the id of that temperature. A film holds its candidates and the choice between
     them; ``choice_steps`` are the figures that the choice is made on. ``alternatives`` are the other methods
     of the situation for the cross-check; ``unusable`` are those that lack a figure, with the reason.
+    ``no_pressure_drop`` says why a forced film gives none.
     """
 
     name: str
@@ -128,6 +149,8 @@ class Branch:
     is_forced: bool = False
     alternatives: tuple[Candidate, ...] = ()
     unusable: Mapping[str, str] = field(default_factory=dict)
+    pressure_drop: PressureDrop | None = None
+    no_pressure_drop: str = ""
 
 
 @dataclass(frozen=True, slots=True)
@@ -283,6 +306,28 @@ class Chain:
         return dict(self.restated.get(case, {}))
 
 
+def follows_temperature(element: Element, forced: Mapping[str, Candidate] | None = None) -> bool:
+    """Whether an element's resistance depends on its own temperatures or flux.
+
+    ``forced`` holds candidates that stand in place of a film's own. Fins follow their film besides.
+    """
+    if isinstance(element, Layer):
+        return bool(element.first_temperature)
+    if any(branch.reference != element.bulk for branch in element.branches):
+        return True
+    moving = {element.surface_temperature, element.flux}
+    chosen_by = (row for branch in element.branches for row in branch.choice)
+    if any(bound in moving for row in chosen_by for bound in row.inputs.values()):
+        return True
+    return any(
+        bound in moving
+        for branch in element.branches
+        for candidate in ((forced[branch.name],) if forced and branch.name in forced else branch.candidates)
+        for step in (*candidate.steps, *branch.choice_steps)
+        for bound in step.inputs.values()
+    )
+
+
 __all__ = [
     "CLEAN",
     "CONDITIONS",
@@ -299,7 +344,9 @@ __all__ = [
     "Input",
     "Layer",
     "OpenItem",
+    "PressureDrop",
     "RunnerAssumption",
     "StreamState",
     "Surface",
+    "follows_temperature",
 ]

@@ -70,3 +70,27 @@ def faults() -> None:
     from calcbook.record.library_pages import faults_page
 
     _print(faults_page())
+
+
+@command.command("bands")
+def bands() -> None:
+    """List the plausible bands that figures are held against."""
+    from calcbook.record.library_pages import bands_page
+
+    _print(bands_page())
+
+
+@command.command("allowances")
+def allowances() -> None:
+    """List typical fouling allowances and typical overall coefficients by service."""
+    from calcbook.record.library_pages import allowances_page
+
+    _print(allowances_page())
+
+
+@command.command("emissivities")
+def emissivities() -> None:
+    """List emissivities of surfaces."""
+    from calcbook.record.library_pages import emissivities_page
+
+    _print(emissivities_page())

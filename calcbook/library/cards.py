@@ -217,6 +217,20 @@ class Choice:
 
 
 @dataclass(frozen=True, slots=True)
+class Friction:
+    """How a situation finds the pressure drop: what it needs more, the friction laws, and the card of the sum.
+
+    ``choose`` is empty where the card ``dp`` has its own friction law.
+    """
+
+    needs: tuple[Need, ...]
+    groups: tuple[Group, ...]
+    choose: tuple[Choice, ...]
+    dp: str
+    where: Place
+
+
+@dataclass(frozen=True, slots=True)
 class Situation:
     """Where a film acts: what it needs, which groups it forms, which methods fit."""
 
@@ -237,6 +251,7 @@ class Situation:
     where: Place
     digest_text: str = field(default="", repr=False)
     changes_phase: str = ""
+    friction: Friction | None = None
 
 
 @dataclass(frozen=True, slots=True)

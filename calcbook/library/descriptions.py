@@ -148,6 +148,16 @@ CHOICE = Description(
         Key("because", "reason for the record", required=True),
     ),
 )
+FRICTION = Description(
+    "the friction of a situation",
+    "how the stream's pressure drop is found; it stands beside the film and never acts on it",
+    (
+        Key("needs", "symbol: quantity, for what the pressure drop alone asks for", "mapping"),
+        Key("groups", "symbol: figure that is formed from needs, groups and properties", "mapping"),
+        Key("choose", "choice table of friction laws, on groups at bulk; absent: the card under `dp` has its own", "list"),
+        Key("dp", "method id of the card that gives the pressure drop", "name", required=True),
+    ),
+)
 SITUATION = Description(
     "a situation card",
     "where a film acts",
@@ -168,6 +178,7 @@ SITUATION = Description(
         Key("choose at", "place of the groups in the choice table", "choice", choices=("bulk", "film", "liquid film"),
             required=True),
         Key("methods", "every method of the situation", "list", required=True),
+        Key("friction", "how the pressure drop is found", "mapping"),
         Key("assumes", "plain sentences for the record", "list", required=True),
         Key("sources", "publications", "list", required=True),
     ),

@@ -21,6 +21,7 @@ from calcbook.library.cards import (
     Assignment,
     CheckPoint,
     Choice,
+    Friction,
     Group,
     Limit,
     Line,
@@ -96,8 +97,8 @@ class _Reader:
 
     # -- pieces -------------------------------------------------------------------------------------
 
-    def items(self, name: str) -> tuple[Node, ...]:
-        node = self.fields.node(name)
+    def items(self, name: str, fields: Fields | None = None) -> tuple[Node, ...]:
+        node = (fields or self.fields).node(name)
         return node.items if isinstance(node, Sequence) else ()
 
     def texts(self, name: str) -> tuple[str, ...]:
@@ -110,8 +111,8 @@ class _Reader:
                            expected="the text in quotes if it holds `: `")
         return tuple(result)
 
-    def entries(self, name: str) -> Iterable[tuple[Scalar, Node]]:
-        node = self.fields.node(name)
+    def entries(self, name: str, fields: Fields | None = None) -> Iterable[tuple[Scalar, Node]]:
+        node = (fields or self.fields).node(name)
         return node.entries if isinstance(node, MappingNode) else ()
 
     def record(self, node: Node, description: Description) -> Fields:
@@ -178,9 +179,9 @@ class _Reader:
             return {}
         return {key.text: value.text for key, value in node.entries if isinstance(value, Scalar)}
 
-    def needs(self) -> tuple[Need, ...]:
+    def needs(self, within: Fields | None = None) -> tuple[Need, ...]:
         result = []
-        for key, value in self.entries("needs"):
+        for key, value in self.entries("needs", within):
             if isinstance(value, Scalar):
                 need = self._need(key, value.text, value.place, (), None)
             else:
@@ -429,13 +430,21 @@ class _Reader:
             sources=self.sources(),
             where=self.fields.place,
             digest_text=self._digest_text(("changes phase", "needs", "flow area", "characteristic length", "groups",
-                                           "choose", "choose at")),
+                                           "choose", "choose at", "friction")),
             changes_phase=self.fields.text("changes phase"),
+            friction=self._friction(),
         )
 
-    def _groups(self) -> tuple[Group, ...]:
+    def _friction(self) -> Friction | None:
+        node = self.fields.node("friction")
+        if node is None:
+            return None
+        fields = self.record(node, described.FRICTION)
+        return Friction(self.needs(fields), self._groups(fields), self._choices(fields), fields.text("dp"), node.place)
+
+    def _groups(self, within: Fields | None = None) -> tuple[Group, ...]:
         result = []
-        for key, value in self.entries("groups"):
+        for key, value in self.entries("groups", within):
             fields = self.record(value, described.GROUP)
             quantity = vocabulary().get(fields.text("is"))
             scalar = fields.scalar("relation")
@@ -447,9 +456,9 @@ class _Reader:
                 result.append(Group(key.text, quantity, relation, key.place))
         return tuple(result)
 
-    def _choices(self) -> tuple[Choice, ...]:
+    def _choices(self, within: Fields | None = None) -> tuple[Choice, ...]:
         result = []
-        for item in self.items("choose"):
+        for item in self.items("choose", within):
             fields = self.record(item, described.CHOICE)
             scalar = fields.scalar("when")
             when = self.relation(scalar) if scalar is not None else None

@@ -1,6 +1,6 @@
 """Properties of fluids: pure fluids, mixtures, tables, stated constants; values and slopes on SI arrays.
 
-A fluid is made by ``pure``, ``mixture``, ``tabulated`` or ``constant``; ``.at(pressure, phase)`` gives
+A fluid is made by ``pure``, ``mixture``, ``humid_air``, ``tabulated``, ``related`` or ``constant``; ``.at(pressure, phase)`` gives
 the object that answers. Backend fluids are answered from Chebyshev series that were compared with the
 backend when made, and are kept in the user's cache folder: a repeat run gets the same bits and does not
 import the backend.
@@ -14,12 +14,14 @@ from calcbook.properties.backend import PROPERTIES, SATURATION_PROPERTIES, backe
 from calcbook.properties.faults import PropertyFault
 from calcbook.properties.findings import Finding
 from calcbook.properties.fluid import Fluid, FluidAtPressure
+from calcbook.properties.humid import SATURATION_FRACTION, humid_air
 from calcbook.properties.names import fluid_names, mixture_names
 from calcbook.properties.stated import ViscosityLaw, astm_d341, constant, tabulated
 from calcbook.properties.store import clear_memory
 
 __all__ = [
     "PROPERTIES",
+    "SATURATION_FRACTION",
     "SATURATION_PROPERTIES",
     "Finding",
     "Fluid",
@@ -31,6 +33,7 @@ __all__ = [
     "clear_memory",
     "constant",
     "fluid_names",
+    "humid_air",
     "mixture",
     "mixture_names",
     "pure",

@@ -188,7 +188,7 @@ class Saturated(_BackedAtPressure):
         if outside == "fault" and not known.all():
             first = float(pressures.ravel()[int(np.argmin(known))])
             raise PropertyFault(
-                "outside-saturation",
+                "outside-fluid-range",
                 f"{self.fluid.name} at {first:.6g} Pa has no saturation temperature",
                 f"a pressure from {float(np.exp(ends[0])):.6g} Pa (triple point) to {float(np.exp(ends[1])):.6g} Pa"
                 " (just below the critical point)",

@@ -18,6 +18,9 @@ PROPERTIES = ("density", "viscosity", "conductivity", "heat capacity", "expansio
 SATURATION_PRESSURE = "saturation pressure"
 # Along the saturation line only; they vanish at the critical point.
 SATURATION_PROPERTIES = ("latent heat", "surface tension")
+# In K, for the expansion of humid air: its volume bends little, and the backend holds it to about 1e-11.
+HUMID_EXPANSION_STEP = 0.5
+DRY_SHARE = 1e-3  # relative humidity at which the backend is asked for saturation
 PRESSURE_STEP = 1e-3  # relative, for slopes in pressure: rounding 1e-13/1e-3 of a liquid's small change
 
 
@@ -257,3 +260,44 @@ def _answer(ask: Any) -> float:
 def _finite(ask: Any) -> float | None:
     value = _answer(ask)
     return value if math.isfinite(value) else None
+
+
+def humid_air(pressure: float, ratio: float, temperature: float) -> dict[str, float]:
+    """The properties of humid air at a humidity ratio (kg of water per kg of dry air), per mass of humid air.
+
+    The backend gives volume and heat capacity per kilogram of dry air. Below the dew point its equations
+    are carried on as if the water stayed in the air.
+    """
+    volume = _humid("V", pressure, ratio, temperature)
+    step = HUMID_EXPANSION_STEP
+    apart = _humid("V", pressure, ratio, temperature + step) - _humid("V", pressure, ratio, temperature - step)
+    return {
+        "density": (1.0 + ratio) / volume,
+        "viscosity": _humid("M", pressure, ratio, temperature),
+        "conductivity": _humid("K", pressure, ratio, temperature),
+        "heat capacity": _humid("C", pressure, ratio, temperature) / (1.0 + ratio),
+        "expansion coefficient": apart / (2.0 * step * volume),
+    }
+
+
+def saturated_air(pressure: float, temperature: float) -> float:
+    """Mole fraction of water in saturated air, over ice below its triple point.
+
+    It is above one where water boils: a relative humidity stands on the vapour pressure there too. The
+    backend refuses such air, but the fraction is proportional to the relative humidity.
+    """
+    return _humid("psi_w", pressure, DRY_SHARE, temperature, "R") / DRY_SHARE
+
+
+def dew_point(pressure: float, ratio: float) -> float | None:
+    """Dew point (below the triple point of water: frost point) in K, None of dry air."""
+    if ratio <= 0.0:
+        return None
+    found = _humid("D", pressure, ratio, 300.0)  # the dew point does not depend on the temperature
+    return found if math.isfinite(found) else None
+
+
+def _humid(key: str, pressure: float, humidity: float, temperature: float, by: str = "W") -> float:
+    from CoolProp.HumidAirProp import HAPropsSI
+
+    return _answer(lambda: HAPropsSI(key, "T", temperature, "P", pressure, by, humidity))

@@ -63,7 +63,7 @@ class Curve:
             if coefficients is not None:
                 result[chosen] = _from_series(name, coefficients, low, high, temperatures[chosen], sloped)
             elif len(path) == DEPTH:
-                result[chosen] = self._direct(name, temperatures[chosen], sloped)
+                result[chosen] = self.direct(name, temperatures[chosen], sloped)
             else:
                 middle = 0.5 * (low + high)
                 below = temperatures[chosen] < middle
@@ -92,7 +92,8 @@ class Curve:
             panels[path] = _accepted(name, values, targets, low, high, tested, family.agreement)
         self.store.changed()
 
-    def _direct(self, name: str, temperatures: Array, sloped: bool) -> Array:
+    def direct(self, name: str, temperatures: Array, sloped: bool) -> Array:
+        """Answers of the backend itself, asked one by one and kept by temperature."""
         kept = self.store.direct.setdefault(name + " slope" if sloped else name, {})
         family = self._family(name)
         result = np.empty_like(temperatures)

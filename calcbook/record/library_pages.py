@@ -17,6 +17,7 @@ from calcbook.library.cards import (
     Source,
     Table,
 )
+from calcbook.library.plausibility import AllowanceCard, allowance_cards, bands, emissivities
 from calcbook.properties import fluid_names, mixture_names
 from calcbook.quantities import unit_display
 from calcbook.record.blocks import Block, Bullets, Code, Heading, Paragraph
@@ -145,6 +146,54 @@ def faults_page() -> tuple[Block, ...]:
     return (Heading(1, "Fault codes"), TableBlock(("Code", "Meaning"), tuple(CODES.items())))
 
 
+def bands_page() -> tuple[Block, ...]:
+    """Every plausible band, in the order of the calculation: dimensions, walls, films, speeds, results."""
+    rows = tuple((band.name, band.quantity.name, band.place, _range(band.texts), band.because, band.source, band.standing)
+                 for band in bands().values())
+    return (
+        Heading(1, "Plausible bands"),
+        Paragraph("A figure outside its band is a caution of the record that names the band. It blocks nothing, and no"
+                  " figure is ever filled in from here."),
+        TableBlock(("Band", "Quantity", "Place", "Usual", "Because", "Source", "Standing"), rows),
+    )
+
+
+def allowances_page() -> tuple[Block, ...]:
+    """Typical fouling allowances and typical coefficients, each with its publication and standing."""
+    blocks: list[Block] = [
+        Heading(1, "Typical fouling allowances and coefficients"),
+        Paragraph("They are for reading, and to warn where a stated figure lies far from what is typical of the service"
+                  " that the calculation names with `service:` on the fouling term or in `report:`. No allowance is ever"
+                  " filled in."),
+    ]
+    for card in allowance_cards().values():
+        blocks += _allowances(card)
+    return tuple(blocks)
+
+
+def emissivities_page() -> tuple[Block, ...]:
+    """Emissivities of surfaces, each with its publication and standing."""
+    rows = tuple((one.surface, one.temperature, one.emissivity, one.source, one.standing) for one in emissivities())
+    return (
+        Heading(1, "Emissivities"),
+        Paragraph("They are for reading: a calculation states its emissivity with a source."),
+        TableBlock(("Surface", "Temperature", "Emissivity", "Source", "Standing"), rows),
+    )
+
+
+def _allowances(card: AllowanceCard) -> list[Block]:
+    numbers = {source: str(number) for number, source in enumerate(card.sources, 1)}
+    rows = tuple((row.service, row.side, _range(row.texts), numbers[row.publication], row.publication.standing, row.note)
+                 for row in card.rows)
+    note = f"Warned of beyond a factor of {card.far:g} outside the range of all publications of a service."
+    sources = tuple(f"{number}: {source.cite} ({source.standing})" for source, number in numbers.items())
+    return [
+        Heading(2, card.title),
+        TableBlock(("Service", "Side", "Typical", "Source", "Standing", "Note"), rows, (note,)),
+        Bullets((*sources, *card.notes)),
+    ]
+
+
 # --- pieces -------------------------------------------------------------------------------------------
 
 
@@ -198,6 +247,15 @@ def _sources(sources: tuple[Source, ...]) -> list[Block]:
 
 def _notes(notes: tuple[str, ...]) -> list[Block]:
     return [Heading(2, "Notes"), Bullets(notes)] if notes else []
+
+
+def _range(texts: tuple[str, str]) -> str:
+    """Both ends of a range as written, the unit once."""
+    (low, _, unit), (high, _, other) = (text.partition(" ") for text in texts)
+    shown = unit_display(other)
+    if texts[0] == texts[1]:
+        return f"{high} {shown}"
+    return f"{low} to {high} {shown}" if unit == other else f"{low} {unit_display(unit)} to {high} {shown}"
 
 
 def _temperatures(card: Material) -> str:

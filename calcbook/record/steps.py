@@ -25,6 +25,7 @@ from calcbook.formulas import (
     write_with_values,
 )
 from calcbook.formulas.names import written_name
+from calcbook.library.cards import Table as CardTable
 from calcbook.library.operations import LookupOperation, RelationOperation, SolveOperation, SumOperation
 from calcbook.library.reading import vocabulary
 from calcbook.quantities import QuantityKind
@@ -184,7 +185,7 @@ class StepTexts:
                 operation.relation, arguments, None if flag else value_text(value, step.kind)
             )
         if isinstance(operation, LookupOperation):
-            return f"table {operation.table.name}: row for {_listed(operation.symbols, arguments)}"
+            return f"table {operation.table.name}: row for {_row_words(operation, arguments)}"
         if isinstance(operation, SolveOperation):
             return _both_sides(operation, arguments, plain(value))
         if isinstance(operation, SumOperation):
@@ -286,7 +287,7 @@ class StepTexts:
         """The constant of a card that stands for another symbol of a card used by it."""
         _, _, place = bound.partition("/")
         card, _, symbol = place.rpartition("/")
-        if card not in self.methods or symbol == local:
+        if card not in self.methods or symbol.rpartition(":")[2] == local or symbol.startswith("word "):
             return []
         return [f"{written_name(local)} is {written_name(symbol)} of {card}"]
 
@@ -317,6 +318,26 @@ def _listed(symbols: Iterable[str], arguments: Values) -> str:
     return ", ".join(
         f"{written_name(symbol)} = {number(plain(arguments[symbol]), LISTED_DIGITS)}" for symbol in symbols
     )
+
+
+def _row_words(operation: LookupOperation, arguments: Values) -> str:
+    """What a row of a table is found by: a choice in its word, all else as figures."""
+    found = []
+    for symbol in operation.symbols:
+        word = _cell_word(operation.table, symbol, plain(arguments[symbol]))
+        found.append(f"{written_name(symbol)} = {word}" if word else _listed((symbol,), arguments))
+    return ", ".join(found)
+
+
+def _cell_word(table: CardTable, symbol: str, value: float) -> str:
+    """The word that stands in a table's column for a figure; empty for a column of figures."""
+    if symbol not in table.columns:
+        return ""
+    column = table.columns.index(symbol)
+    for cells, texts in zip(table.cells, table.texts, strict=True):
+        if cells[column] == value:
+            return texts[column] if texts[column].isalpha() else ""
+    return ""
 
 
 def _both_sides(operation: SolveOperation, arguments: Values, root: float) -> str:

@@ -217,6 +217,8 @@ class _Game:
     def _join_what_needs_another(self) -> bool:
         """Join every block that makes no calculation alone, or that leaves none when it alone is missing.
 
+        Whether a calculation has an answer is seen when all subsets are solved.
+
         Returns whether any were joined. A block is joined with a smallest set of those it needs.
         """
         self._find_overrides()
@@ -224,7 +226,7 @@ class _Game:
         joins = []
         for number in everything:
             alone = frozenset((number,))
-            for holds in (self._stands, lambda part: self._stands(everything - part)):
+            for holds in (self._makes_sense, lambda part: self._makes_sense(everything - part)):
                 if not holds(alone):
                     joins.append(self._changes(self._smallest(alone, holds)))
         self._join(joins)
@@ -253,15 +255,26 @@ class _Game:
                 *(block for block in self.blocks[first:] if block not in touched),
             ]
 
-    def _stands(self, subset: frozenset[int]) -> bool:
-        """Whether a subset of the blocks makes a calculation that has an answer."""
+    def _mixed(self, subset: frozenset[int]) -> Chain | None:
+        """The chain of a subset of the blocks, with its inputs; None where it makes no calculation."""
         chain = self.mixer.chain(self._changes(number for number in subset if number not in self.overrides))
         if chain is None:
-            return False
+            return None
         moved = [self.overrides[number] for number in sorted(subset) if number in self.overrides]
-        chain = with_inputs(chain, {name: value for inputs in moved for name, value in inputs.items()})
-        return has_sound_states(chain) and all(
-            bool(np.isfinite(self._solved(chain, {}, 1, condition)[1]).all()) for condition in self.conditions
+        return with_inputs(chain, {name: value for inputs in moved for name, value in inputs.items()})
+
+    def _makes_sense(self, subset: frozenset[int]) -> bool:
+        """Whether a subset of the blocks makes a calculation with streams in states that they can have."""
+        chain = self._mixed(subset)
+        return chain is not None and has_sound_states(chain)
+
+    def _stands(self, subset: frozenset[int]) -> bool:
+        """Whether a subset of the blocks makes such a calculation, and it has an answer."""
+        chain = self._mixed(subset)
+        return (
+            chain is not None
+            and has_sound_states(chain)
+            and all(np.isfinite(self._solved(chain, {}, 1, item)[1]).all() for item in self.conditions)
         )
 
     def _changes(self, subset: Iterable[int]) -> frozenset[int]:
@@ -283,7 +296,7 @@ class _Game:
                 self.overrides[number] = moved
 
     def _agree(self, one: Chain, other: Chain) -> bool:
-        """Whether two chains give one U in every condition: the test of what looks like the same structure."""
+        """Whether two chains give one U in every condition, as two of one structure do."""
         for condition in self.conditions:
             first, second = (float(self._solved(chain, {}, 1, condition)[1][0]) for chain in (one, other))
             if not abs(first - second) <= SAME_ANSWER * abs(first):

@@ -32,6 +32,7 @@ WAY = frozenset(
         "deposit",
         "thickness",
         "outside diameter",
+        "fins",
     )
 )
 # What stands beside the figure of a given and moves no result, with the words for it.
@@ -504,7 +505,7 @@ class _Differences:
         if part == "parallel" and both:
             for name, _, was, now in self._pairs(old, new, part):
                 self._term((*path, name), name, was, now, None)
-        elif part in ("with", "deposit") and both:
+        elif part in ("with", "deposit", "fins") and both:
             for name, inner_key, was, now in self._pairs(old, new, part):
                 self._figure((*path, name), "term", f"{title} {name}", was, now, inner_key)
         elif part in ("method", "situation"):

@@ -170,8 +170,8 @@ def form_text(solved: Solved, role: str, person: str) -> str:
     lines = [
         f"# Form for the role {role} of {calculation.number}, revision {calculation.revision}.",
         "# Fill it in and give the command again: it takes the form into the sign-offs and removes it.",
-        "# Each answer is a sentence in your own words, in quotes, that cites something of the record: the id",
-        "# of a step, the symbol of a given, or a figure as it is printed. Ticks and empty answers are refused.",
+        "# Each answer is a sentence in your own words, in quotes, that cites something of the record: the",
+        "# id of a step, the symbol of a given, or a figure as printed. Ticks and empty answers are refused.",
         *_identity(solved, role, person),
         "",
         f"# {' | '.join(WAYS)}",
@@ -206,7 +206,7 @@ def blind_form_text(solved: Solved, role: str, person: str) -> str:
     lines = [
         f"# Hand values of the role {role} for {calculation.number}, revision {calculation.revision}.",
         "# Find them before you read the record. Fill in at least one h and one U, each with its unit, and",
-        "# give the command again. They are stored as they stand, and shown beside the record's when you sign.",
+        "# give the command again. They are stored as they are, and shown beside the record's when you sign.",
         *_identity(solved, role, person),
         "",
         *yaml_lines({"values": [{"result": name, "by hand": ""} for name in blind_results(solved)]}),

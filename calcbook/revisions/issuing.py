@@ -162,18 +162,6 @@ def _frozen(work: Work, lifecycle: Lifecycle, date: datetime.date, kind: str) ->
     issued = with_issue(lifecycle, copy)
     changes = changes_of(work.path, work.solved, work.output, issued)
     texts = dict(_copied(work))
-    if RECORD in texts or RESULTS in texts or SEAL_NAME in texts:
-        raise Faults(
-            [
-                Fault(
-                    "name-not-allowed",
-                    work.place,
-                    "a table file has the name of a part of the issued copy",
-                    "",
-                    "another name for the table file",
-                )
-            ]
-        )
     texts[RECORD] = record_text(work.solved, life_from(issued, calculation.settings, changes)).encode("utf-8")
     texts[RESULTS] = results_text(work.solved, digest, software).encode("utf-8")
     copy = replace(copy, files={name: sha256_of(data) for name, data in sorted(texts.items())})
@@ -194,6 +182,9 @@ def _copied(work: Work) -> Iterator[tuple[str, bytes]]:
         if chain.library.house is not None and not (BUILT_IN / f"{kind}s" / f"{card}.yaml").is_file():
             yield f"{HOUSE_CARDS}/{card}.yaml", (chain.library.house / f"{card}.yaml").read_bytes()
     for table in sorted(set(_table_files(calculation.meaning))):
+        if table in (CALCULATION, BOOK, RECORD, RESULTS, SIGNOFFS, SEAL_NAME):
+            message = f"the table file {table} has the name of a part of the issued copy"
+            raise Faults([Fault("name-not-allowed", work.place, message, table, "another name for it")])
         yield table, (work.path.parent / table).read_bytes()
     signoffs = signoffs_path(work.path)
     yield (

@@ -7,6 +7,7 @@ from collections.abc import Mapping
 
 import numpy as np
 
+from calcbook.chain.pressure import drops, evaluate_pressure_drops
 from calcbook.chain.solve import Solution
 from calcbook.chain.types import CLEAN, CONDITIONS, SERVICE, Chain, Group
 
@@ -15,6 +16,7 @@ RATIOS = ("cleanliness", "excess_surface")
 _WITH_CONDITION = re.compile(r"(U|UA|heat_flux|heat_flow)_(clean|service)(?: on (.+))?")
 _OF_TERM = re.compile(r"(T|h|R) (.+) (clean|service)")
 _OF_STREAM = re.compile(r"(speed|Re) (.+)")
+_PRESSURE_DROP = re.compile(r"dp (.+)_(clean|service)")
 _IN_TABLE = {"U": "U", "UA": "UA", "heat_flux": "heat flux", "heat_flow": "heat flow"}
 
 
@@ -22,7 +24,7 @@ def conditions_of(name: str) -> tuple[str, ...]:
     """The conditions that a result is made from."""
     if name in RATIOS:
         return CONDITIONS
-    found = _WITH_CONDITION.fullmatch(name) or _OF_TERM.fullmatch(name)
+    found = _WITH_CONDITION.fullmatch(name) or _OF_TERM.fullmatch(name) or _PRESSURE_DROP.fullmatch(name)
     return (CLEAN,) if found is not None and CLEAN in found.groups() else (SERVICE,)
 
 
@@ -47,6 +49,9 @@ def result_values(chain: Chain, solutions: Mapping[str, Solution], name: str) ->
     if found is not None:
         key = f"{found[1]} {found[2]}"
         return _value(solutions[found[3]], chain.results[key]) if key in chain.results else None
+    found = _PRESSURE_DROP.fullmatch(name)
+    if found is not None:
+        return _pressure_drop(chain, solutions[found[2]], found[1])
     return _of_stream(chain, solutions[SERVICE], name)
 
 
@@ -77,6 +82,14 @@ def _interface(chain: Chain, solution: Solution, name: str) -> Array | None:
             )
         if name == f"{element.name} to {following.name}":
             return temperature
+    return None
+
+
+def _pressure_drop(chain: Chain, solution: Solution, stream: str) -> Array | None:
+    for _, branch, drop in drops(chain):
+        if branch.stream == stream:
+            evaluate_pressure_drops(chain, solution)
+            return _value(solution, drop.total.coefficient)
     return None
 
 

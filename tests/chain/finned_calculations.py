@@ -22,9 +22,16 @@ FIGURES = {
     "k_f": "205 W/(m K)",
     "R_i": "0.0001 m^2 K/W",
     "R_o": "0.0003 m^2 K/W",
+    "S_T": "63.5 mm",
+    "S_L": "55 mm",
+    "A": "11 m^2",
 }
 STATED = "coefficient: h_a, temperature: T_a"
 ACROSS = "stream: air, situation: across-tube"
+BANK = (
+    "stream: air, situation: finned-tube-bank,"
+    " with: {S_T: S_T, S_L: S_L, N_r: {value: 5, source: test}, arrangement: staggered, A_face: A}"
+)
 
 
 def finned_tube(

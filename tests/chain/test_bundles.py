@@ -47,14 +47,18 @@ def test_open_tubes_share_the_flow_pass_by_pass(tmp_path):
     # Every open tube transfers heat, along the effective length.
     area = math.pi * 0.01905 * 4.7 * 124
     assert found.number(chain.surfaces[chain.basis].area) == pytest.approx(area, rel=1e-12)
-    assert found.number(chain.results["UA"]) == pytest.approx(found.number(chain.results["U"]) * area, rel=1e-12)
+    assert found.number(chain.results["UA"]) == pytest.approx(
+        found.number(chain.results["U"]) * area, rel=1e-12
+    )
 
 
 def test_the_heat_transfer_methods_take_the_effective_length(tmp_path):
     """The entrance term (d/L)^(2/3) of the tube side follows the heated length, 4.7 m."""
     _, short = solved(tmp_path, bundle(WHOLE))
     _, same = solved(tmp_path, COOLER.replace("length: L,", "length: {value: 4.7 m, source: drawing},"))
-    assert short.number("tube film/h of tube film") == pytest.approx(same.number("tube film/h of tube film"), rel=1e-12)
+    assert short.number("tube film/h of tube film") == pytest.approx(
+        same.number("tube film/h of tube film"), rel=1e-12
+    )
 
 
 def test_a_bundle_of_one_pass_is_tubes_in_parallel(tmp_path):
@@ -67,12 +71,16 @@ def test_a_bundle_of_one_pass_is_tubes_in_parallel(tmp_path):
 
 def test_plugging_raises_the_speed_and_lowers_the_conductance(tmp_path):
     def body(count):
-        return bundle(f"length: L, tubes: {{value: 124, source: drawing}}, passes: {{value: 2, source: drawing}},"
-                      f" plugged: {{count: {count}, source: inspection report}}")
+        return bundle(
+            f"length: L, tubes: {{value: 124, source: drawing}}, passes: {{value: 2, source: drawing}},"
+            f" plugged: {{count: {count}, source: inspection report}}"
+        )
 
     _, few = solved(tmp_path, body(2))
     chain, many = solved(tmp_path, body(12))
-    assert many.number("tube film/speed") / few.number("tube film/speed") == pytest.approx(122 / 112, rel=1e-12)
+    assert many.number("tube film/speed") / few.number("tube film/speed") == pytest.approx(
+        122 / 112, rel=1e-12
+    )
     assert many.number(chain.results["UA"]) < few.number(chain.results["UA"])
     assert many.number(chain.results["U"]) > few.number(chain.results["U"])
 
@@ -80,8 +88,14 @@ def test_plugging_raises_the_speed_and_lowers_the_conductance(tmp_path):
 def test_the_record_has_a_row_for_each(tmp_path):
     chain_of(tmp_path, bundle(WHOLE))
     text = record_text(solve_file(tmp_path / "trial.yaml"))
-    for row in ("| tubes of geometry | 130 |", "| passes of geometry | 2 |", "| plugged of geometry | 6 |",
-                "| effective length of geometry | 4.7 m |", "130 − 6", "124/2"):
+    for row in (
+        "| tubes of geometry | 130 |",
+        "| passes of geometry | 2 |",
+        "| plugged of geometry | 6 |",
+        "| effective length of geometry | 4.7 m |",
+        "130 − 6",
+        "124/2",
+    ):
         assert row in text, row
     assert "inspection report" in text
 
@@ -94,11 +108,17 @@ def test_a_count_without_source_is_open(tmp_path):
 def test_faults_of_bundles(tmp_path):
     assert codes(tmp_path, bundle("length: L, parallel: N, tubes: N")) == ["key-conflict"]
     assert codes(tmp_path, bundle("length: L, plugged: {count: 6, source: x y}")) == ["key-missing"]
-    assert codes(tmp_path, bundle("length: L, tubes: N, plugged: {count: 6.5, source: x y}")) == ["number-unreadable"]
+    assert codes(tmp_path, bundle("length: L, tubes: N, plugged: {count: 6.5, source: x y}")) == [
+        "number-unreadable"
+    ]
     # 62 plugged of 62: no tube is open, and no pass has one.
-    assert set(codes(tmp_path, bundle("length: L, tubes: N, plugged: {count: 62, source: x y}"))) == {"limit-stops"}
-    assert set(codes(tmp_path, bundle("length: L, tubes: N, passes: {value: 80, source: x y}"))) == {"limit-stops"}
-    assert set(codes(tmp_path, bundle("length: L, tubes: N, effective length: {value: 5 m, source: x y}"))) == {
+    assert set(codes(tmp_path, bundle("length: L, tubes: N, plugged: {count: 62, source: x y}"))) == {
         "limit-stops"
     }
+    assert set(codes(tmp_path, bundle("length: L, tubes: N, passes: {value: 80, source: x y}"))) == {
+        "limit-stops"
+    }
+    assert set(
+        codes(tmp_path, bundle("length: L, tubes: N, effective length: {value: 5 m, source: x y}"))
+    ) == {"limit-stops"}
     assert codes(tmp_path, bundle("length: L, tubes: N, plugged: {source: x y}")) == ["key-missing"]

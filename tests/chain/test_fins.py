@@ -7,7 +7,7 @@ import math
 import ht
 import numpy as np
 import pytest
-from finned_calculations import ACROSS, FIGURES, finned_bore, finned_plane, finned_tube
+from finned_calculations import ACROSS, BANK, FIGURES, finned_bore, finned_plane, finned_tube
 from scipy.special import iv, kv
 from small_calculations import chain_of, givens
 from test_sensitivities import PRESSURE, difference
@@ -27,6 +27,7 @@ BODIES = {
     "adiabatic tip": finned_tube(ACROSS, more=", tip: adiabatic"),
     "allowance on the bare surface": finned_tube(ACROSS, fouling="resistance: R_o, on: bare"),
     "cooled air": finned_tube(ACROSS, T_a="120 degC", T_w="40 degC"),
+    "finned bank": finned_tube(BANK),
     "finned bore": finned_bore(),
     "finned bore, stated film": finned_bore("coefficient: h_w, temperature: T_w"),
     "finned plane": finned_plane(),
@@ -80,7 +81,7 @@ def test_closure_of_the_record(tmp_path, name):
 @pytest.mark.parametrize("condition", CONDITIONS)
 @pytest.mark.parametrize("name", BODIES)
 def test_slopes_against_differences(tmp_path, name, condition):
-    """Every input, clean and service, against central differences of whole solutions (bands as for plain films)."""
+    """Every input against central differences of whole solutions, in the bands of plain films."""
     chain = chain_of(tmp_path, BODIES[name])
     inputs = chain.case_inputs("")
     wanted = (chain.results["U"], chain.results["heat flow"], chain.outer.surface_temperature)
@@ -91,7 +92,10 @@ def test_slopes_against_differences(tmp_path, name, condition):
             found = float(np.asarray(slopes[result].get(key, 0.0)))
             band = PRESSURE if "/p_" in key else 1e-6
             expected = difference(chain, inputs, condition, key, result)
-            assert found == pytest.approx(expected, rel=band, abs=1e-9 * scale / abs(float(inputs[key]))), (result, key)
+            assert found == pytest.approx(expected, rel=band, abs=1e-9 * scale / abs(float(inputs[key]))), (
+                result,
+                key,
+            )
 
 
 def test_samples_do_not_depend_on_their_neighbours(tmp_path):
@@ -108,7 +112,7 @@ def test_samples_do_not_depend_on_their_neighbours(tmp_path):
 
 
 def test_a_finned_tube_by_hand(tmp_path):
-    """All of it again from Bessel functions of scipy: areas, efficiency, (1/h + R_f)/(eta_o*A), U on each surface."""
+    """Again from Bessel functions of scipy: areas, efficiency, (1/h + R_f)/(eta_o*A), U on each surface."""
     chain, solution = solved(tmp_path, finned_tube())
     d_i, d_o, length, tubes = 0.0212, 0.0254, 6.0, 120.0
     height, thickness, pitch, k = 0.0159, 0.0004, 0.00231, 205.0
@@ -136,7 +140,9 @@ def test_a_finned_tube_by_hand(tmp_path):
     assert solution.number(results["U on bare"]) == pytest.approx(conductance / bare, rel=1e-12)
     assert solution.number(results["U on outside"]) == pytest.approx(conductance / bare, rel=1e-12)
     assert solution.number(results["U on total finned"]) == pytest.approx(conductance / total, rel=1e-12)
-    assert total / bare == pytest.approx(solution.number("geometry/A_tf") / solution.number("circuit/A_o"), rel=1e-14)
+    assert total / bare == pytest.approx(
+        solution.number("geometry/A_tf") / solution.number("circuit/A_o"), rel=1e-14
+    )
     # Three terms together are the film, its fouling and the fins.
     series = sum(solution.number(results[f"R {name}"]) for name in ("air film", "dust", "fins of air film"))
     assert series / bare == pytest.approx(air, rel=1e-12)
@@ -153,7 +159,7 @@ def test_the_efficiency_against_an_independent_library(tmp_path):
 
 
 def test_fouling_lies_inside_the_efficiency(tmp_path):
-    """The service efficiency is that of the coefficient of film and dust together, and so is the higher one."""
+    """The efficiency in service is that of film and dust together, and so the higher one."""
     chain = chain_of(tmp_path, finned_tube(more=", tip: adiabatic", R_o="0.01 m^2 K/W"))
     clean, service = (solve(chain, chain.case_inputs(""), condition) for condition in CONDITIONS)
     step = "fins of air film/fin-annular-bessel/eta"
@@ -197,11 +203,13 @@ def test_fins_along_a_bore_by_hand(tmp_path):
 
 
 def test_conductivity_is_the_mean_between_root_and_surface(tmp_path):
-    """Carbon steel, Incropera: 60.5 at 300 K and 56.7 at 400 K, straight between, so that the mean is in the middle."""
+    """Carbon steel, Incropera: 60.5 at 300 K, 56.7 at 400 K; straight between, the mean is in the middle."""
     _, solution = solved(tmp_path, finned_tube(ACROSS, "material: carbon-steel-plain-incropera"))
     first, second = solution.number("fins of air film/T_1"), solution.number("fins of air film/T_2")
     middle = np.interp(0.5 * (first + second), [300.0, 400.0], [60.5, 56.7])
-    assert solution.number("fins of air film/carbon-steel-plain-incropera/k") == pytest.approx(middle, rel=1e-9)
+    assert solution.number("fins of air film/carbon-steel-plain-incropera/k") == pytest.approx(
+        middle, rel=1e-9
+    )
     assert second < first
 
 
@@ -212,7 +220,9 @@ def test_the_surface_temperature_is_the_mean_one_and_the_root_is_checked(tmp_pat
     total = solution.number("geometry/A_tf")
     assert 45.0 * total * mean == pytest.approx(solution.number(chain.results["heat flow"]), rel=1e-10)
     root = solution.number(chain.results["T root air film"]) - bulk
-    assert mean / root == pytest.approx(solution.number("fins of air film/fin-overall-surface/eta"), rel=1e-10)
+    assert mean / root == pytest.approx(
+        solution.number("fins of air film/fin-overall-surface/eta"), rel=1e-10
+    )
 
 
 def test_an_allowance_on_the_bare_surface_is_referred(tmp_path):
@@ -244,6 +254,26 @@ def test_a_method_for_plain_tubes_is_cautioned(tmp_path):
     assert (check.level, check.state) == ("caution", "outside")
 
 
+def test_the_film_of_a_finned_bank_takes_its_figures_from_the_fins(tmp_path):
+    """Ganguli, Tung, Taborek with five staggered rows, worked by hand on the drawing's figures."""
+    chain, solution = solved(tmp_path, finned_tube(BANK))
+    blocked = 0.0254 + 2 * 0.0159 * 0.0004 / 0.00231
+    fastest = solution.number("air film/Re") * 0.0635 / (0.0635 - blocked)
+    tip = 0.0254 + 2 * 0.0159
+    ratio = (0.0254 * (0.00231 - 0.0004) + (tip**2 - 0.0254**2) / 2 + tip * 0.0004) / (0.0254 * 0.00231)
+    number = 0.38 * fastest**0.6 * ratio**-0.15 * solution.number("air film/Pr") ** (1 / 3)
+    assert solution.number("air film/ganguli-1985/Nu") == pytest.approx(number, rel=1e-12)
+    assert not any(check.id.endswith("plain surface") for check in chain.elements[3].checks)
+
+
+def test_the_cross_check_closes_methods_that_follow_the_surface(tmp_path):
+    """ESDU 86022 takes the Prandtl number at the surface, the method used takes nothing of it."""
+    chain_of(tmp_path, finned_tube(BANK))
+    rows = {row.method: row for row in solve_file(tmp_path / "trial.yaml").cross if row.term == "air film"}
+    assert set(rows) == {"briggs-young-1963", "esdu-86022"}
+    assert abs(rows["esdu-86022"].difference) < 0.15 and not rows["esdu-86022"].left_out
+
+
 # --- what cannot stand ------------------------------------------------------------------------------
 
 
@@ -256,14 +286,18 @@ def codes(tmp_path, body) -> list[str]:
 
 def test_faults_of_fins(tmp_path):
     bore = finned_bore()
-    assert codes(tmp_path, bore.replace("shape: straight", "shape: annular").replace("count: n", "pitch: p")) == [
-        "fins-not-here"
-    ]
+    assert codes(
+        tmp_path, bore.replace("shape: straight", "shape: annular").replace("count: n", "pitch: p")
+    ) == ["fins-not-here"]
     assert codes(tmp_path, finned_tube().replace("pitch: p, ", "")) == ["need-missing"]
     assert codes(tmp_path, finned_tube().replace(", conductivity: k_f", "")) == ["need-missing"]
     assert codes(tmp_path, finned_tube(more=", method: fin-straight-rect")) == ["method-unknown"]
     assert codes(tmp_path, finned_tube(t="2.4 mm")) == ["limit-stops", "limit-stops"]
     assert codes(tmp_path, finned_tube(more=", material: aluminium-1100-crc")) == ["key-conflict"]
+    bank = finned_tube(BANK)
+    assert codes(tmp_path, bank.replace("A_face: A}", "A_face: A, p_f: p}")) == ["key-conflict"]
+    no_fins = bank.split("     fins:")[0].rstrip().rstrip(",") + "}\nreport: {U on: outside}\n"
+    assert codes(tmp_path, no_fins) == ["need-missing"]
     plain = finned_tube().split("     fins:")[0].rstrip().rstrip(",") + "}\nreport: {U on: bare}\n"
     assert codes(tmp_path, plain) == ["surface-unknown"]
 

@@ -25,6 +25,7 @@ from calcbook.calcfile.meaning import meaning_of
 from calcbook.chain.outcome import Solved
 from calcbook.documents import read_text
 from calcbook.faults import Faults
+from calcbook.interface import library_of
 from calcbook.record import digest_of, record_text
 from calcbook.record.life import Life
 from calcbook.revisions.issuing import issue
@@ -322,6 +323,7 @@ def test_a_card_that_changes_voids_and_is_named(tmp_path: Path) -> None:
     figure = re.search(r"k: \[(\d+\.\d+)", text)
     assert figure is not None
     card.write_text(text.replace(figure[1], f"{float(figure[1]) * 1.1:.3f}", 1), encoding="utf-8")
+    library_of.cache_clear()  # a book's cards are read once a process
     (prepared, *_) = judged(path)
     assert prepared.validity == "void"
     assert prepared.why[0] == "cards changed: material house-steel"

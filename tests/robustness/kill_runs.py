@@ -3,9 +3,9 @@
     python tests/robustness/kill_runs.py --kills 200 --seed 1
 
 Every kill is SIGKILL, so nothing of the program can tidy up. A file is whole when its bytes are those of
-before the command or those of after it; an issued copy is whole when it is not there or its seal holds. What a
-writer leaves beside (`.writing-…`, `.issuing-…`) is no file of the book. Prints how many were tried, how many
-met the program at work, and what was lost; the exit code is 1 when anything was.
+before the command or those of after it; an issued copy is whole when it is not there or its seal holds. What
+a writer leaves beside (`.writing-…`, `.issuing-…`) is no file of the book. Prints how many were tried, how
+many met the program at work, and what was lost; the exit code is 1 when anything was.
 """
 
 from __future__ import annotations

@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 from calcbook.chain.outcome import CaseOutcome, CriterionResult
-from calcbook.record.blocks import Block, Heading, Paragraph, Table
+from calcbook.chain.pressure import drops
+from calcbook.record.blocks import Block, Heading, Paragraph, Quote, Table
 from calcbook.record.numbers import (
     CONCLUSION_DIGITS,
     PLAIN_DIGITS,
@@ -106,6 +107,18 @@ def _brief_rows(page: Page) -> list[tuple[str, str, str]]:
             value = in_report_unit(result.value, result.kind, page.calculation.report, PLAIN_DIGITS)
             rows.append((title + suffix, value, "U·A times the difference of the bulk temperatures"))
     rows.append(("Controlling term in service", *_controlling(page.base)))
+    return rows + _pressure_rows(page)
+
+
+def _pressure_rows(page: Page) -> list[tuple[str, str, str]]:
+    """What every stream with a law of friction loses; section 8 shows the steps at its film."""
+    rows = []
+    for group, branch, drop in drops(page.chain):
+        for condition, words in (("service", "in service"), ("clean", "clean")):
+            result = page.result(f"dp {branch.stream}_{condition}")
+            if result is not None:
+                value = in_report_unit(result.value, result.kind, page.calculation.report, CONCLUSION_DIGITS)
+                rows.append((f"Pressure drop of {branch.stream}, {words}", value, f"{drop.total.method.id}, at {group.name}"))
     return rows
 
 

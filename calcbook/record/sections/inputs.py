@@ -5,11 +5,13 @@ from __future__ import annotations
 import math
 
 from calcbook.calcfile.calculation import Assumption, FluidText, Given
+from calcbook.chain.films import SATURATION_FIGURES
+from calcbook.chain.fluids import BoilingOperation, FixedOperation, PropertyOperation
 from calcbook.chain.outcome import PropertyRow
 from calcbook.chain.types import SERVICE, Input
 from calcbook.formulas.names import written_name
 from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Table
-from calcbook.record.numbers import AS_GIVEN_DIGITS, NOT_USED, celsius, number, unit_text, with_unit
+from calcbook.record.numbers import AS_GIVEN_DIGITS, NOT_USED, celsius, number, unit_text, value_text, with_unit
 from calcbook.record.page import Page
 from calcbook.record.steps import pressure_words
 
@@ -147,8 +149,33 @@ def _cards(page: Page) -> list[Block]:
 
 def _properties(page: Page) -> list[Block]:
     rows = (*page.base.properties, *_flow_states(page))
-    if not rows:
+    saturated = _saturation_rows(page)
+    if not rows and not saturated:
         return [Paragraph("No property of a fluid is used.")]
+    tables: list[Block] = [_property_table(rows, page)] if rows else []
+    if saturated:
+        tables.append(Heading(3, "Figures of the saturation line"))
+        tables.append(Table(("Stream", "Place", "Figure", "Clean", "Service", "Unit", "Provider"), saturated))
+    return tables
+
+
+def _saturation_rows(page: Page) -> tuple[tuple[str, ...], ...]:
+    """Saturation temperature, latent heat, surface tension and the like of streams that change phase."""
+    streams = {id(state.fluid): name for name, state in page.chain.streams.items()}
+    found = {}
+    for row in (row for term in page.base.chains for row in term.rows):
+        operation, kind = row.step.operation, row.step.kind
+        on_line = isinstance(operation, PropertyOperation) and operation.property in SATURATION_FIGURES
+        if kind is None or not (on_line or isinstance(operation, BoilingOperation | FixedOperation)):
+            continue
+        owner, _, place = row.step.id.removeprefix("stream ").rpartition("/")[0].partition("/")
+        stream = owner if row.step.id.startswith("stream ") else streams[id(operation.source)]  # type: ignore[union-attr]
+        values = tuple(value_text(value, kind) for value in (row.clean, row.service))
+        found[row.step.id] = (stream, place or "saturation", kind.name, *values, unit_text(kind.unit), row.step.basis)
+    return tuple(found.values())
+
+
+def _property_table(rows: tuple[PropertyRow, ...], page: Page) -> Table:
     asked = [column for column in PROPERTY_COLUMNS if any(column[0] in row.values for row in rows)]
     columns = (
         "Stream",
@@ -161,7 +188,7 @@ def _properties(page: Page) -> list[Block]:
         *(title for _, title, _ in asked),
         "Provider",
     )
-    return [Table(columns, tuple(_property_row(row, asked, page) for row in rows))]
+    return Table(columns, tuple(_property_row(row, asked, page) for row in rows))
 
 
 def _flow_states(page: Page) -> list[PropertyRow]:

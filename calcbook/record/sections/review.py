@@ -196,8 +196,9 @@ QUESTIONS: tuple[tuple[str, Answer | None], ...] = (
 
 def review(page: Page) -> list[Block]:
     """Questions with the answers of the figures; those for a person stay open."""
+    answered = dict(page.life.answers)
     rows = tuple(
-        (str(place), question, answer(page) if answer is not None else FOR_CHECKER)
+        (str(place), question, answer(page) if answer is not None else answered.get(place, FOR_CHECKER))
         for place, (question, answer) in enumerate(QUESTIONS, 1)
     )
     people = sum(answer is None for _, answer in QUESTIONS)
