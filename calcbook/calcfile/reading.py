@@ -655,7 +655,7 @@ class _Reader:
             return None
         columns = read_table_file(self.folder / scalar.text, scalar.place, self.collector)
         self.side_files[scalar.text] = {
-            column: [value.text for value in values] for column, values in columns.items()
+            column: [value.text for value in values] for column, values in (columns or {}).items()
         }
         return (
             FluidText("table", name, place, columns=columns, source=source) if columns is not None else None
