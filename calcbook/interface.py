@@ -2,13 +2,16 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from functools import cache
 from pathlib import Path
+from typing import Any
 
 from calcbook.calcfile import Calculation, Settings, read_calculation, read_settings
 from calcbook.chain.analysis import NotConverged, analyse
 from calcbook.chain.build import build
 from calcbook.chain.outcome import Solved
+from calcbook.chain.types import Chain
 from calcbook.faults import Collector, Fault, Faults, Place
 from calcbook.library import Library
 from calcbook.links import ISSUED, Links, Source
@@ -106,7 +109,41 @@ def source_of(solved: Solved) -> Source:
 
 def _solved(calculation: Calculation, library: Library, collector: Collector) -> Solved | None:
     chain = build(calculation, library, collector)
+    if chain is not None and library.house is not None:
+        check_house_cards(chain, collector)
     return analyse(chain, collector) if chain is not None else None
+
+
+def check_house_cards(chain: Chain, collector: Collector) -> None:
+    """Hold the book's own cards that a chain uses to the rules of the library: check points, units, states."""
+    from calcbook.library.checking import check_material, check_method
+
+    methods, materials = _cards_of(chain)
+    for name in methods:
+        if chain.library.method(name).house:
+            _collected(lambda card: check_method(card, chain.library), chain.library.method(name), collector)
+    for name in materials:
+        if chain.library.material(name).house:
+            _collected(check_material, chain.library.material(name), collector)
+
+
+def _cards_of(chain: Chain) -> tuple[tuple[str, ...], tuple[str, ...]]:
+    """Ids of the methods and materials that a chain may take, in the order of its terms."""
+    methods: dict[str, None] = {}
+    for group in (chain.inner, chain.outer):
+        for branch in group.branches:
+            for candidate in branch.candidates:
+                methods.update(dict.fromkeys(card.id for card in candidate.cards))
+    named = [name.partition(" ") for name in chain.cards]
+    methods.update(dict.fromkeys(card for kind, _, card in named if kind == "method"))
+    return tuple(methods), tuple(card for kind, _, card in named if kind == "material")
+
+
+def _collected(check: Callable[[Any], None], card: object, collector: Collector) -> None:
+    try:
+        check(card)
+    except Faults as faults:
+        collector.take(faults.faults)
 
 
 def record_text(solved: Solved) -> str:

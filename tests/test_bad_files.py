@@ -60,6 +60,7 @@ CARDS = {
 PROGRAMS = {
     "derivative-unknown",  # raised on a relation by itself; the chain differentiates by numbers then
     "no-vapour-pressure",  # asked for the boiling temperature of a table or of constants
+    "pressure-missing",  # humid air without a pressure has the fault of the missing key
     "phase-unknown",  # `phase:` is a choice of two
     "property-not-available",  # the chain takes what the backend cannot give as not known
     "property-unknown",  # the columns of a fluid are keys of a described mapping

@@ -31,7 +31,6 @@ ORDER = (
     "library",
     "calcfile",
     "chain",
-    "uncertainty",
     "record",
     "links",
     "interface",
@@ -57,8 +56,8 @@ OWNERS = {
     "rich": {"commands", "book"},
     "platformdirs": {"properties", "book"},
     "markdown_it": {"record"},
-    "scipy": {"formulas", "chain", "uncertainty"},
-    "numpy": {"formulas", "properties", "library", "chain", "uncertainty", "record", "revisions"},
+    "scipy": {"formulas", "chain"},
+    "numpy": {"formulas", "properties", "library", "chain", "record", "revisions"},
 }
 # A run never asks the machine about itself: same input, same bytes. Sign-off dates are compared with today
 # in `revisions`; the cache folder is named by the environment in `properties`.

@@ -15,7 +15,7 @@ from calcbook.library.errata import Erratum, read_errata
 from calcbook.record.blocks import Block, Heading, Paragraph, Table
 from calcbook.revisions.seals import Issued, check_seals
 from calcbook.revisions.sides import load_issued
-from calcbook.revisions.signoffs import signoffs_path
+from calcbook.revisions.signoffs import lies_ahead, signoffs_path
 
 REFUSE_ANY = "refuse any issue"
 
@@ -91,6 +91,9 @@ def _signoffs(entry: Entry) -> Iterator[AuditFinding]:
         if item.validity == "void":
             yield AuditFinding("sign-off void", file, 0, f"{item.role}: {'; '.join(item.why)}",
                                "have the role sign the content as it is now")
+        elif item.signoff is not None and lies_ahead(item.signoff.date):
+            yield AuditFinding("date in the future", file, 0, f"{item.role} is dated {item.signoff.date}",
+                               "have the role sign with the date of the day")
 
 
 def _issued(entry: Entry, errata: Sequence[Erratum]) -> Iterator[AuditFinding]:

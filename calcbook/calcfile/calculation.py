@@ -97,7 +97,8 @@ class Revision:
 class FluidText:
     """A fluid as the file names it.
 
-    ``kind``: name, mixture, table or constants. ``columns`` holds the entries of a table or constants by
+    ``kind``: name, mixture, humid air, petroleum, table or constants. ``fraction`` is the figure that tells
+    one mixture from another: a fraction, the humidity by its ``basis``, or the relative density. ``columns`` holds the entries of a table or constants by
     property name; ``astm`` the two points of a D341 viscosity as (temperature, kinematic viscosity).
     """
 
@@ -109,6 +110,7 @@ class FluidText:
     columns: Mapping[str, tuple[Value, ...]] = field(default_factory=dict)
     astm: tuple[tuple[Value, Value], ...] = ()
     source: str = ""
+    product: str = ""
 
 
 @dataclass(frozen=True, slots=True)

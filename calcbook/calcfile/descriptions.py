@@ -123,13 +123,33 @@ FLUID_TABLE = Description(
         Key("heat capacity", "specific heat capacity", "node"),
     ),
 )
+HUMID_AIR = Description(
+    "humid air",
+    "humid air by its relative humidity or its humidity ratio",
+    (
+        Key("relative humidity", "at the temperature and pressure of the stream", "node", of=SOURCED),
+        Key("humidity ratio", "mass of water for a mass of dry air", "node", of=SOURCED),
+    ),
+)
+PRODUCTS = ("crude oil", "gasoline", "kerosene", "fuel oil", "lubricating oil")
+PETROLEUM = Description(
+    "a petroleum liquid",
+    "a petroleum liquid by its relative density",
+    (
+        Key("relative density", "at 60 degF against water at 60 degF", "node", of=SOURCED, required=True),
+        Key("product", "what it is, for its expansion", "choice", choices=PRODUCTS),
+    ),
+)
 FLUID = Description(
     "a fluid",
-    "a mixture, a table or constants",
+    "a mixture, humid air, a petroleum liquid, a table or constants",
     (
         Key("mixture", "names of the parts, such as ethylene glycol + water"),
         Key("mass fraction", "mass fraction of the first part", "node", of=SOURCED),
         Key("volume fraction", "volume fraction of the first part", "node", of=SOURCED),
+        Key("humid air", "humid air: {relative humidity: 60 %}", "mapping", of=HUMID_AIR),
+        Key("petroleum", "petroleum liquid: {relative density: 0.86}", "mapping", of=PETROLEUM),
+        Key("viscosity", "viscosity of a petroleum liquid: {astm d341: [[T, ν], [T, ν]]}", "node"),
         Key("table", "properties against temperature", "mapping", of=FLUID_TABLE),
         Key("table file", "CSV file beside the calculation with a unit row", "name"),
         Key("constants", "properties that do not change", "mapping", of=FLUID_TABLE),

@@ -52,6 +52,7 @@ SYMBOL = re.compile(r"[A-Za-z][A-Za-z0-9_]{0,39}")
 CLASHING_NAMES = frozenset(["given", "derived", "geometry", "circuit", "solution", "book"])
 CLASHING_STARTS = ("stream ", "case ", "fluid ", "assumption ", "word ", "unread ")
 AT_PLACE = "at "
+FLUID_KINDS = ("mixture", "humid air", "petroleum", "table", "table file", "constants")
 CASE_WORDS = ("all", "base", "clean", "service")
 RESERVED = frozenset(
     [
@@ -598,7 +599,7 @@ class _Reader:
 
     def fluid_record(self, name: str, node: Node) -> FluidText | None:
         fields = read_mapping(node, described.FLUID, self.collector, node.place)
-        kinds = [key for key in ("mixture", "table", "table file", "constants") if key in fields]
+        kinds = [key for key in FLUID_KINDS if key in fields]
         for other in kinds[1:]:
             self.refuse_pair(fields, kinds[0], other)
         if not kinds:
@@ -606,15 +607,21 @@ class _Reader:
                 self.collector.add(
                     "key-missing",
                     node.place,
-                    "a fluid is a name, a mixture, a table or constants",
-                    expected="mixture: … | table: {…} | table file: … | constants: {…}",
+                    "a fluid is a name, a mixture, humid air, a petroleum liquid, a table or constants",
+                    expected=" | ".join(f"{kind}: …" for kind in FLUID_KINDS),
                 )
             return None
         source = fields.text("source")
+        if kinds[0] != "petroleum":
+            self.refuse_pair(fields, kinds[0], "viscosity")
         if kinds[0] == "mixture":
             return self.mixture(fields, source, node)
         for key in ("mass fraction", "volume fraction"):
             self.refuse_pair(fields, kinds[0], key)
+        if kinds[0] == "humid air":
+            return self.humid_air(fields, source)
+        if kinds[0] == "petroleum":
+            return self.petroleum(fields, name, source, node.place)
         if kinds[0] == "table file":
             return self.table_file(fields, name, source, node.place)
         body = fields.node(kinds[0])
@@ -640,6 +647,42 @@ class _Reader:
             self.value(fields.node(basis)),
             source=source,
         )
+
+    def humid_air(self, fields: Fields, source: str) -> FluidText | None:
+        body = fields.node("humid air")
+        assert body is not None
+        inner = read_mapping(body, described.HUMID_AIR, self.collector, body.place)
+        self.refuse_pair(inner, "relative humidity", "humidity ratio")
+        basis = next(iter(inner), "")
+        if not basis:
+            if isinstance(body, MappingNode) and not self.has_fault_in(body):
+                self.collector.add(
+                    "key-missing",
+                    body.place,
+                    "humid air says its humidity",
+                    expected="relative humidity: 60 % | humidity ratio: 0.012",
+                )
+            return None
+        humidity = self.value(inner.node(basis))
+        return FluidText("humid air", "humid air", body.place, basis, humidity, source=source)
+
+    def petroleum(self, fields: Fields, name: str, source: str, place: Place) -> FluidText | None:
+        body = fields.node("petroleum")
+        inner = read_mapping(body, described.PETROLEUM, self.collector, place)
+        density = self.value(inner.node("relative density"))
+        viscosity = fields.node("viscosity")
+        astm: tuple[tuple[Value, Value], ...] = ()
+        if viscosity is not None:
+            points = viscosity.get("astm d341") if isinstance(viscosity, MappingNode) else None
+            astm = self.astm_points(points if points is not None else viscosity, viscosity.place)
+            if not astm:
+                return None
+        if density is None:
+            return None
+        return FluidText(
+            "petroleum", name, place, "relative density", density, astm=astm, source=source,
+            product=inner.text("product"),
+        )  # fmt: skip
 
     def table_file(self, fields: Fields, name: str, source: str, place: Place) -> FluidText | None:
         scalar = fields.scalar("table file")

@@ -47,6 +47,7 @@ from calcbook.chain.types import (
 )
 from calcbook.faults import Collector, nearest_names, shown
 from calcbook.library import vocabulary
+from calcbook.properties import SATURATION_FRACTION
 from calcbook.library.operations import run
 from calcbook.quantities import QuantityFault, as_kind
 
@@ -144,7 +145,7 @@ class _Analysis:
 
     def _stop_if_limit(self, name: str, solution: Solution) -> None:
         """A stop limit that explains a missing number is a fault, not a failure to converge."""
-        for check in self._limits(solution):
+        for check in self._circuit_limits(solution):
             result = evaluate_check(check, solution, name, self.dimensions)
             if result.level == "stop" and result.state == "outside":
                 self._report_stop(result)
@@ -380,7 +381,7 @@ class _Analysis:
 
     def _property_row(self, state, place: str, condition: str, prefix: str, temperature: str, solution: Solution  # type: ignore[no-untyped-def]
                       ) -> PropertyRow | None:
-        names = ("density", "viscosity", "conductivity", "heat capacity", "expansion coefficient")
+        names = ("density", "viscosity", "conductivity", "heat capacity", "expansion coefficient", SATURATION_FRACTION)
         used = {name: solution.number(f"{prefix}/{name}") for name in names if f"{prefix}/{name}" in solution.values}
         if not used or temperature not in solution.values:
             return None
@@ -397,6 +398,10 @@ class _Analysis:
     # -- checks and criteria ------------------------------------------------------------------------
 
     def _limits(self, solution: Solution) -> list:  # type: ignore[type-arg]
+        return self._circuit_limits(solution) + pressure_drop_checks(self.chain, solution)
+
+    def _circuit_limits(self, solution: Solution) -> list:  # type: ignore[type-arg]
+        """The limits of all that the circuit closes on: they can be seen without a finished solution."""
         limits = list(self.chain.checks)
         for element in self.chain.elements:
             if isinstance(element, Layer):
@@ -404,7 +409,7 @@ class _Analysis:
                 continue
             for branch in element.branches:
                 limits += chosen(branch, solution).checks
-        return limits + pressure_drop_checks(self.chain, solution)
+        return limits
 
     def _checks(self, name: str, solutions: Mapping[str, Solution]) -> tuple[CheckResult, ...]:
         results = []
@@ -621,13 +626,17 @@ def _title(element: Group | Layer) -> str:
                            for branch in element.branches)
 
 
+def _card_words(candidate: Candidate) -> str:
+    return f"{candidate.method.id}, house method" if candidate.method.house else candidate.method.id
+
+
 def _branch_notes(branch: Branch, solutions: Mapping[str, Solution]) -> list[str]:
     """Which method acts, in one sentence; two where clean and service differ."""
     clean, service = (chosen(branch, solutions[condition]) for condition in CONDITIONS)
     if branch.situation is None:
         return [f"{branch.name}: {service.because}."]
     if clean is service:
-        return [f"{branch.name}: {service.method.title} ({service.method.id}), {service.because}."]
+        return [f"{branch.name}: {service.method.title} ({_card_words(service)}), {service.because}."]
     return [f"{branch.name}, service: {service.method.title} ({service.method.id}), {service.because}.",
             f"{branch.name}, clean: {clean.method.title} ({clean.method.id}), {clean.because}."]
 

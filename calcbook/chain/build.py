@@ -10,6 +10,7 @@ from calcbook.calcfile.links import CURRENT
 from calcbook.chain.films import FilmScope
 from calcbook.chain.fins import FinnedSide, check_finned_situation, lay_out_fins, lay_out_fins_layer
 from calcbook.chain.pressure import asked_symbols, lay_out_pressure_drop
+from calcbook.chain.petroleum import lay_out_cards
 from calcbook.chain.scope import Scope
 from calcbook.chain.services import check_services
 from calcbook.chain.streams import lay_out_stream
@@ -60,7 +61,8 @@ class _Builder:
         self._givens()
         self._derived()
         self.streams = {name: state for name, stream in calculation.streams.items()
-                        if (state := lay_out_stream(scope, stream)) is not None}
+                        if (state := lay_out_stream(scope, stream, self.library)) is not None}
+        self.checks += lay_out_cards(scope, self.library, self.streams)
         terms = calculation.resistances
         walls = tuple(term for term in terms if term.kind == "wall")
         if calculation.geometry is None or not calculation.geometry.shape or not terms:

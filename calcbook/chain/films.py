@@ -582,7 +582,7 @@ class FilmScope:
     def forced_branch(self, method: str) -> Branch | None:
         """A film whose method the file names."""
         assert self.situation is not None
-        if method not in self.situation.methods:
+        if method not in self.situation.methods and not self._is_served(method):
             self.scope.open(f"{self.owner}/method", "check", f"The method {method} is not one of the situation"
                             f" {self.situation.id}.")
         candidate = self.candidate(method, "named in the calculation file")
@@ -590,6 +590,14 @@ class FilmScope:
             return None
         return Branch(self.owner, "film", self.bulk, (candidate,), (), (), self.situation,
                       self.stream.name if self.stream else "", True)
+
+    def _is_served(self, method: str) -> bool:
+        """Whether a book's own method is made for this situation."""
+        assert self.situation is not None
+        try:
+            return self.situation.id in self.library.method(method).serves
+        except Faults:
+            return False
 
     def alternatives(self, laid_out: set[str]) -> tuple[tuple[Candidate, ...], dict[str, str]]:
         """The other methods of the situation; one that lacks a figure is named with the reason, no fault."""

@@ -18,6 +18,8 @@ from calcbook.library.operations import run
 from calcbook.properties import FluidAtPressure, PropertyFault
 
 ICE_POINT = 273.15
+# A pure fluid's two sides of saturation meet within rounding; a blend's dew point lies above by more than this, K.
+GLIDE = 1e-3
 
 
 def celsius(temperature: float, digits: int = 4) -> str:
@@ -49,6 +51,7 @@ def stream_findings(chain: Chain, case: str, collector: Collector) -> tuple[Open
         if state.saturation and math.isnan(temperature):
             _report_no_saturation(state, values, collector, case)
             continue
+        items += _glide_items(chain, state, temperature, case)
         for finding in fluid.check_state(temperature, state.phase or None):
             where = f"case {case}: " if case else ""
             if finding.level == "fault":
@@ -57,6 +60,23 @@ def stream_findings(chain: Chain, case: str, collector: Collector) -> tuple[Open
                 name = f"stream {state.name}/{finding.code}" + (f"/{case}" if case else "")
                 items.append(OpenItem(name, "state", f"{where}Stream {state.name}: {finding.message}."))
     return tuple(items)
+
+
+def _glide_items(chain: Chain, state: StreamState, temperature: float, case: str) -> list[OpenItem]:
+    """An open item for a blend that boils over a range of temperatures under a method for pure fluids."""
+    changes = any(branch.stream == state.name and branch.situation is not None and branch.situation.changes_phase
+                  for group in (chain.inner, chain.outer) for branch in group.branches)
+    if not changes or not state.saturation:
+        return []
+    sides = [state.fluid.state(None, None, phase) for phase in ("liquid", "gas")]
+    pressure = float(sides[0].saturation_pressure(temperature, outside="nan"))
+    dew = float(sides[1].boiling_temperature(pressure, outside="nan"))
+    if not abs(dew - temperature) > GLIDE:
+        return []
+    where = f"case {case}: " if case else ""
+    name = f"stream {state.name}/boils over a range" + (f"/{case}" if case else "")
+    return [OpenItem(name, "state", f"{where}Stream {state.name}: {state.fluid.text.name} boils over a range of"
+                     f" {number_text(dew - temperature, 3)} K; the methods are for pure fluids.")]
 
 
 def _report_no_saturation(state: StreamState, values: Mapping[str, object], collector: Collector, case: str) -> None:
@@ -158,7 +178,7 @@ def _film_checks(chain: Chain, case: str, solution: Solution, group: Group, bran
             add("boils", "T_s < T_sat", boiling, boiling is not None and surface < boiling, "<",
                 "the method is for a liquid without boiling at the surface")
         elif phase == "gas" and boiling is not None:
-            add("condenses", "T_s > T_sat", boiling, surface > boiling, ">",
+            add("condenses", f"T_s > {'T_dew' if state.fluid.text.kind == 'humid air' else 'T_sat'}", boiling, surface > boiling, ">",
                 "the method is for a gas without condensing at the surface")
     freezing = fluid.freezing_temperature()
     if (phase == "liquid" or phase_change) and freezing is not None:
@@ -195,7 +215,7 @@ def assumptions_of(chain: Chain, solutions: Mapping[str, Solution]) -> tuple[Run
         if not state.pressure and state.fluid.text.kind == "name":
             say(f"stream {state.name}/saturated", f"Properties of {state.name} are those of the saturated liquid.",
                 "no pressure is stated; checks against boiling at the wall cannot be evaluated", f"stream {state.name}")
-        if state.fluid.text.kind != "name":
+        if state.fluid.text.kind not in ("name", "humid air"):
             say(f"stream {state.name}/vapour pressure", f"Boiling at the wall is not checked for {state.name}.",
                 "its fluid has no vapour pressure", f"stream {state.name}")
         if not state.phase:

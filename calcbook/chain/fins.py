@@ -365,7 +365,7 @@ class _Series:
         return stated or allowed[0]
 
     def _combined(self, fouling: Sequence[Layer]) -> tuple[str, str]:
-        """Film and fouling in series on the total finned area, and the coefficient that they make together."""
+        """Film and fouling in series on the total finned area, and the coefficient of both together."""
         held = branch_coefficient(self.group, self.group.branches[0].name)
         self.scope.dimensions[held] = vocabulary()["film coefficient"].dimension
         total = self.finned.figures["total finned area"]

@@ -18,11 +18,16 @@ FRACTION_STEP = 1e-4
 
 @dataclass(frozen=True)
 class FluidSource:
-    """A fluid that may depend on a mixture fraction: gives the property fluid for a fraction."""
+    """A fluid that may depend on a figure of its own: gives the property fluid for it.
+
+    The figure is a mixture fraction, the humidity ratio of humid air (None: saturation alone) or a relative
+    density; ``make`` gives the fluid of one where it is no mixture.
+    """
 
     text: FluidText
     fixed: Fluid | None = None
-    _made: dict[float, Fluid] = field(default_factory=dict, compare=False, repr=False)
+    make: Callable[[float | None], Fluid] | None = None
+    _made: dict[float | None, Fluid] = field(default_factory=dict, compare=False, repr=False)
     _states: dict[tuple, FluidAtPressure] = field(default_factory=dict, compare=False, repr=False)
 
     def has(self, name: str) -> bool:
@@ -30,6 +35,8 @@ class FluidSource:
 
         The expansion coefficient follows from a table's densities; where it cannot, only limits miss it.
         """
+        if self.text.kind == "petroleum":
+            return name != "viscosity" or bool(self.text.astm)
         if self.text.kind not in ("table", "constants") or name == "expansion coefficient":
             return True
         return name in self.text.columns or (name == "viscosity" and bool(self.text.astm))
@@ -38,9 +45,12 @@ class FluidSource:
         """The fluid itself, or the mixture of that fraction. Raises ``PropertyFault``."""
         if self.fixed is not None:
             return self.fixed
-        assert fraction is not None
         if fraction not in self._made:
-            self._made[fraction] = properties.mixture(self.text.name, self.text.basis, fraction)
+            if self.make is not None:
+                self._made[fraction] = self.make(fraction)
+            else:
+                assert fraction is not None
+                self._made[fraction] = properties.mixture(self.text.name, self.text.basis, fraction)
         return self._made[fraction]
 
     def state(self, pressure: float | None, fraction: float | None, phase: str) -> FluidAtPressure:
@@ -83,9 +93,10 @@ class PropertyOperation:
         if symbol == "p":
             return self.by_state(arguments, lambda state, at: state.pressure_slope(self.property, at, outside="nan"))
         if symbol == "w":
-            low = self.value({**arguments, "w": arguments["w"] - FRACTION_STEP})
-            high = self.value({**arguments, "w": arguments["w"] + FRACTION_STEP})
-            return (high - low) / (2.0 * FRACTION_STEP)
+            below = np.maximum(np.asarray(arguments["w"]) - FRACTION_STEP, 0.0)
+            above = np.asarray(arguments["w"]) + FRACTION_STEP
+            low, high = (self.value({**arguments, "w": part}) for part in (below, above))
+            return (high - low) / (above - below)
         return np.zeros(np.shape(arguments["T"]))
 
     def by_state(self, arguments: Mapping[str, Array], read: Read) -> Array:

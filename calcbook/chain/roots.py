@@ -3,7 +3,7 @@
 The laws of such films step at the joints of their regimes. Where the coefficient steps up with the heat flux,
 two heat flows can close one circuit. The figures of one record are laid out side by side at many heat flows
 around the answer, and the excess of the summed drops over the whole difference is looked at: it rises through
-zero once for each answer. Film boiling and transition boiling have no card, so their answers are not among them.
+zero once for each answer. Film boiling and transition boiling have no card: their answers are not among them.
 """
 
 from __future__ import annotations
@@ -28,12 +28,15 @@ def changes_phase(chain: Chain) -> bool:
     """Whether any film of the chain condenses or boils by a method."""
     return any(
         branch.situation is not None and branch.situation.changes_phase
-        for element in chain.elements if isinstance(element, Group)
+        for element in chain.elements
+        if isinstance(element, Group)
         for branch in element.branches
     )
 
 
-def other_heat_flows(chain: Chain, inputs: Mapping[str, Array], condition: str, solution: Solution) -> tuple[float, ...]:
+def other_heat_flows(
+    chain: Chain, inputs: Mapping[str, Array], condition: str, solution: Solution
+) -> tuple[float, ...]:
     """The heat flows other than the one found at which the circuit closes too, within half to twice of it."""
     if not chain.has_temperatures or not changes_phase(chain):
         return ()

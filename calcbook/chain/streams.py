@@ -2,24 +2,31 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 from calcbook import properties
 from calcbook.calcfile.calculation import FluidText, Stream, Value
 from calcbook.chain.fluids import BoilingOperation, FluidSource, PropertyOperation
+from calcbook.chain.petroleum import petroleum
 from calcbook.chain.scope import Scope
 from calcbook.chain.types import StreamState
 from calcbook.formulas import parse_expression
-from calcbook.library import vocabulary
+from calcbook.library import Library, vocabulary
 from calcbook.properties import PropertyFault
 from calcbook.quantities import QuantityFault, as_kind
 
 SATURATION = "saturation"
+HUMIDITY_RATIO = "humidity ratio"
+# From the relative humidity, with the molar mass of water over that of dry air (ASHRAE Handbook Fundamentals
+# 2017, chapter 1).
+HUMIDITY = "0.621945*phi*x_ws/(1 - phi*x_ws)"
 FLOW_KINDS = ("mass flow", "volume flow", "speed")
 
 
-def lay_out_stream(scope: Scope, stream: Stream) -> StreamState | None:
+def lay_out_stream(scope: Scope, stream: Stream, library: Library) -> StreamState | None:
     """The state and flow of a stream as ids; None when its fluid or temperature cannot be read."""
     owner = f"stream {stream.name}"
-    fluid = _fluid(scope, stream.fluid) if stream.fluid is not None else None
+    fluid = _fluid(scope, stream.fluid, library) if stream.fluid is not None else None
     on_line = is_saturation(scope, stream.temperature)
     temperature = "" if on_line else scope.value(stream.temperature, "temperature", owner, "temperature")
     pressure = scope.value(stream.pressure, "pressure", owner, "pressure")
@@ -29,8 +36,14 @@ def lay_out_stream(scope: Scope, stream: Stream) -> StreamState | None:
     if fluid is None or not temperature:
         return None
     fraction = ""
-    if fluid.text.fraction is not None:
-        fraction = scope.value(fluid.text.fraction, "mass fraction", owner, fluid.text.basis)
+    assert stream.fluid is not None
+    if fluid.text.kind == "humid air":
+        fraction = _humidity(scope, stream, fluid, temperature, pressure)
+        if not fraction:
+            return None
+    elif fluid.text.fraction is not None:
+        kind = fluid.text.basis if fluid.text.kind == "petroleum" else "mass fraction"
+        fraction = scope.value(fluid.text.fraction, kind, owner, fluid.text.basis)
     flow_kind = _flow_kind(scope, stream.flow)
     flow = scope.value(stream.flow, flow_kind, owner, "flow") if flow_kind else ""
     if stream.flow is not None and not flow:
@@ -81,9 +94,40 @@ def _saturation(scope: Scope, stream: Stream, fluid: FluidSource | None, pressur
                       vocabulary()["saturation temperature"])
 
 
+def _humidity(scope: Scope, stream: Stream, fluid: FluidSource, temperature: str, pressure: str) -> str:
+    """The id of the humidity ratio of a stream of humid air; empty after a fault."""
+    assert stream.fluid is not None and stream.fluid.fraction is not None
+    owner, text = f"stream {stream.name}", stream.fluid
+    if not pressure:
+        scope.collector.add("key-missing", text.place, f"the humid air of stream {stream.name} has no pressure",
+                            expected="pressure: … on the stream")
+        return ""
+    scope.assume(f"{owner}/humid air", f"The mass flow of {stream.name} is that of the humid air: its density and heat"
+                 " capacity are those of a kilogram of humid air.", "its dry air and its water flow together", owner)
+    scope.assume(f"{owner}/humidity", f"{stream.name} keeps its water at a surface below its dew point, for its"
+                 " properties there.", "its films are for a gas that does not condense; the wall is checked", owner)
+    assert text.fraction is not None
+    stated = scope.value(text.fraction, text.basis, owner, text.basis)
+    humidity = _si_of(scope, text.fraction)
+    if text.basis != HUMIDITY_RATIO and humidity is not None and humidity > 1.0:
+        scope.collector.add("fraction-outside", text.fraction.place, "a relative humidity lies from 0 to 100 %",
+                            found=f"{humidity:.6g}", expected="such as 60 %")
+        return ""
+    if text.basis == HUMIDITY_RATIO:
+        return stated
+    name = properties.SATURATION_FRACTION
+    operation = PropertyOperation(fluid, name, "gas", True, False)
+    fraction = scope.step(f"{owner}/{name}", "x_ws", "mole fraction of water in saturated air", owner, operation,
+                          {"T": temperature, "p": pressure}, fluid.at_fraction(None).provider,
+                          vocabulary()["mole fraction"])
+    return scope.relation_step(f"{owner}/humidity ratio", "W", "humidity ratio", owner,
+                               parse_expression(HUMIDITY), {"phi": stated, "x_ws": fraction},
+                               "mole fractions; 0.621945 is the molar mass of water over that of dry air", HUMIDITY_RATIO)
+
+
 def _provider(scope: Scope, fluid: FluidSource, stream: Stream) -> str:
-    fraction = None
-    if fluid.text.fraction is not None:
+    fraction: float | None = None
+    if fluid.text.kind != "humid air" and fluid.text.fraction is not None:
         fraction = _si_of(scope, fluid.text.fraction)
         if fraction is None:
             return fluid.text.name
@@ -101,13 +145,18 @@ def _si_of(scope: Scope, value: Value) -> float | None:
     return value.quantity.value if value.quantity is not None else None
 
 
-def _fluid(scope: Scope, text: FluidText) -> FluidSource | None:
+def _fluid(scope: Scope, text: FluidText, library: Library) -> FluidSource | None:
     """The property fluid behind a fluid of the file. Faults: what the properties room raises."""
     try:
         if text.kind == "name":
             return FluidSource(text, properties.pure(text.name))
         if text.kind == "mixture":
             return FluidSource(text)
+        if text.kind == "humid air":
+            return FluidSource(replace(text, basis=HUMIDITY_RATIO), make=properties.humid_air)
+        if text.kind == "petroleum":
+            law = properties.astm_d341(_astm_points(scope, text)) if text.astm else None
+            return FluidSource(text, make=petroleum(library, text, law))
         _check_fluid_source(scope, text)
         if text.kind == "constants":
             return FluidSource(text, properties.constant(_constants(scope, text), name=text.name))
@@ -163,13 +212,19 @@ def _tabulated(scope: Scope, text: FluidText) -> properties.Fluid:
             columns[name] = (temperatures, figures)
     if not text.astm:
         return properties.tabulated(columns, name=text.name)
+    points = _astm_points(scope, text)
+    columns["kinematic viscosity"] = ([one for one, _ in points], [two for _, two in points])
+    return properties.tabulated(columns, viscosity_law="astm d341", name=text.name)
+
+
+def _astm_points(scope: Scope, text: FluidText) -> list[tuple[float, float]]:
+    """The two points of a D341 viscosity in SI. Raises ``PropertyFault`` where one cannot be read."""
     points = [(_figures(scope, (one,), "temperature"), _figures(scope, (two,), "kinematic viscosity"))
               for one, two in text.astm]
     if not all(one and two for one, two in points):
         raise PropertyFault("astm-points", "the two points of the D341 viscosity cannot be read",
                             expected="[[40 degC, 46 mm^2/s], [100 degC, 6.8 mm^2/s]]")
-    columns["kinematic viscosity"] = ([one[0] for one, _ in points], [two[0] for _, two in points])
-    return properties.tabulated(columns, viscosity_law="astm d341", name=text.name)
+    return [(one[0], two[0]) for one, two in points]
 
 
 def _flow_kind(scope: Scope, flow: Value | None) -> str:

@@ -37,6 +37,41 @@ def list_cards(cards: Path | None) -> None:
     _print(overview(_library(cards)))
 
 
+@command.command("overview")
+@click.option("--output", type=click.Path(path_type=Path, file_okay=False), default=Path("output"), metavar="DIR",
+              show_default=True, help="Folder of library.md.")
+@click.option("--cards", type=click.Path(path_type=Path, exists=True, file_okay=False), metavar="DIR",
+              help="A book's own cards, counted in.")
+def overview_page(output: Path, cards: Path | None) -> None:
+    """Write library.md: every situation, its methods, their ranges as bars, accuracy, state and source."""
+    from calcbook.files import write_whole
+    from calcbook.record.library_overview import library_overview
+    from calcbook.record.markdown import markdown
+
+    library = _library(cards)
+    write_whole(output / "library.md", markdown(library_overview(library)))
+    click.echo(f"situations {len(library.names('situations'))}, methods {len(library.names('methods'))},"
+               f" materials {len(library.names('materials'))}")
+
+
+@command.command("family")
+@click.argument("name")
+@click.option("--cards", type=click.Path(path_type=Path, exists=True, file_okay=False), metavar="DIR",
+              help="A book's own cards, counted in.")
+def family(name: str, cards: Path | None) -> None:
+    """Show the page of the family NAME: methods that share an ancestor, their ranges, and where they act."""
+    from calcbook.faults import nearest_names
+    from calcbook.record.library_overview import families, family_page
+
+    library = _library(cards)
+    blocks = family_page(name, library)
+    if blocks is None:
+        near = ", ".join(nearest_names(name, families(library)))
+        click.echo(f"the library has no family `{name}`" + (f"; nearest: {near}" if near else ""), err=True)
+        sys.exit(USAGE)
+    _print(blocks)
+
+
 @command.command("show")
 @click.argument("name")
 @click.option("--cards", type=click.Path(path_type=Path, exists=True, file_okay=False), metavar="DIR",

@@ -13,7 +13,9 @@ FINDINGS = 1
 @click.command("verify", short_help="Run every check point on this installation.")
 @click.option("--output", type=click.Path(path_type=Path, file_okay=False), default=Path("output"), metavar="DIR",
               show_default=True, help="Folder of verification.md.")
-def command(output: Path) -> None:
+@click.option("--cards", type=click.Path(path_type=Path, exists=True, file_okay=False), metavar="DIR",
+              help="A book's own cards, checked with the others.")
+def command(output: Path, cards: Path | None) -> None:
     """Run every check point of every card on this installation and write verification.md.
 
     Each figure of a card is also moved by one per cent, to see whether an outside check point misses it.
@@ -26,7 +28,7 @@ def command(output: Path) -> None:
     from calcbook.record.software import software_line
     from calcbook.record.verification import verification_blocks
 
-    library = Library()
+    library = Library(cards)
     if sys.stderr.isatty():
         from rich.console import Console
         from rich.progress import Progress

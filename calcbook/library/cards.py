@@ -15,6 +15,7 @@ STANDINGS = (
     "published",
     "independent library",
     "independent numerics",
+    "plant data",
     "common practice",
     "from memory",
 )
@@ -141,7 +142,7 @@ class CheckPoint:
     @property
     def is_outside(self) -> bool:
         """Whether the reference lies outside this project's own arithmetic."""
-        return self.standing in ("published", "independent library", "independent numerics")
+        return self.standing in ("published", "independent library", "independent numerics", "plant data")
 
 
 @dataclass(frozen=True, slots=True)
@@ -188,6 +189,7 @@ class Method:
     house: bool
     where: Place
     digest_text: str = field(default="", repr=False)
+    serves: tuple[str, ...] = ()
 
     def need(self, symbol: str) -> Need | None:
         for need in self.needs:

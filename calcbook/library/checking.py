@@ -11,10 +11,10 @@ from dataclasses import dataclass, fields, is_dataclass, replace
 
 import numpy as np
 
-from calcbook.faults import Collector, Faults
+from calcbook.faults import Collector, Faults, nearest_names
 from calcbook.formulas import Node, Number, Relation, write
 from calcbook.library import Library, evaluate_method
-from calcbook.library.cards import Assignment, CheckPoint, Line, Material, Method, Solve, Sum
+from calcbook.library.cards import Assignment, CheckPoint, Friction, Line, Material, Method, Solve, Sum
 from calcbook.library.conductivity import ConductivityTable
 
 MUTATION = 1.01
@@ -93,6 +93,11 @@ def check_method(card: Method, library: Library) -> None:
     check-point-failed, check-points-missing, card-unchecked."""
     library.program(card.id)
     collector = Collector()
+    for name in card.serves:
+        if name not in library.names("situations"):
+            collector.add("situation-unknown", card.where, f"{card.id} serves `{name}`, which the library does not have",
+                          found=name, expected="a situation of `calcbook library`",
+                          nearest=nearest_names(name, library.names("situations")))
     _check_count(card, collector)
     for point in card.check_points:
         try:
@@ -126,7 +131,22 @@ def check_situation(name: str, library: Library) -> None:
             library.program(method)
         except Faults as faults:
             collector.take(faults.faults)
+    if situation.friction is not None:
+        _check_friction(situation.friction, library, collector)
     collector.stop_if_any()
+
+
+def _check_friction(friction: Friction, library: Library, collector: Collector) -> None:
+    """That the laws of a situation give a friction factor, and the card under `dp` a pressure drop."""
+    for method, gives in (*((choice.use, "f") for choice in friction.choose), (friction.dp, "dp")):
+        try:
+            card = library.program(method).method
+        except Faults as faults:
+            collector.take(faults.faults)
+            continue
+        if card.gives != gives:
+            collector.add("method-not-friction", friction.where, f"`{method}` gives {card.gives}, not {gives}",
+                          found=card.gives, expected=gives)
 
 
 def _check_count(card: Method | Material, collector: Collector) -> None:

@@ -129,6 +129,7 @@ METHOD = Description(
         Key("check points", "given values and what must follow", "list", required=True),
         Key("state", "lifecycle", "mapping", required=True),
         Key("notes", "disagreements settled in writing", "list"),
+        Key("serves", "situations of the library that a book's own method is made for", "list"),
     ),
 )
 GROUP = Description(

@@ -235,6 +235,7 @@ class _Reader:
             notes=self.texts("notes"),
             house=house,
             where=self.fields.place,
+            serves=self._serves(house),
             digest_text=self._digest_text(("needs", "constants", "uses", "tables", "relations", "limits",
                                            "properties at", "closes on", "gives")),
         )
@@ -434,6 +435,13 @@ class _Reader:
             changes_phase=self.fields.text("changes phase"),
             friction=self._friction(),
         )
+
+    def _serves(self, house: bool) -> tuple[str, ...]:
+        """Situations that a book's own method is made for; a card of the library is listed in the situation itself."""
+        if "serves" in self.fields and not house:
+            self.fault(self.fields.place_of("serves"), "key-unknown", "only a book's own card says what it serves",
+                       found="serves", expected="the method in the list of the situation's card")
+        return self.texts("serves")
 
     def _friction(self) -> Friction | None:
         node = self.fields.node("friction")

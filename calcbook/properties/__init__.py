@@ -16,7 +16,7 @@ from calcbook.properties.findings import Finding
 from calcbook.properties.fluid import Fluid, FluidAtPressure
 from calcbook.properties.humid import SATURATION_FRACTION, humid_air
 from calcbook.properties.names import fluid_names, mixture_names
-from calcbook.properties.stated import ViscosityLaw, astm_d341, constant, tabulated
+from calcbook.properties.stated import Relation, ViscosityLaw, astm_d341, constant, related, tabulated
 from calcbook.properties.store import clear_memory
 
 __all__ = [
@@ -27,6 +27,7 @@ __all__ = [
     "Fluid",
     "FluidAtPressure",
     "PropertyFault",
+    "Relation",
     "ViscosityLaw",
     "astm_d341",
     "backend_version",
@@ -37,5 +38,6 @@ __all__ = [
     "mixture",
     "mixture_names",
     "pure",
+    "related",
     "tabulated",
 ]

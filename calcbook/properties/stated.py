@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from typing import Protocol
 
 import numpy as np
 from numpy.typing import ArrayLike
@@ -17,6 +18,7 @@ from calcbook.properties.series import Array
 
 KINEMATIC = "kinematic viscosity"
 VISCOSITY_LAWS = ("log-linear", "astm d341")
+EXPANSION_STEP = 0.1  # K
 _LN10 = math.log(10.0)
 
 
@@ -120,7 +122,7 @@ class _LawColumn:
     """Viscosity as kinematic viscosity by ASTM D341 times density."""
 
     law: ViscosityLaw
-    density: _Column
+    density: Relation
 
     def value(self, at: Array) -> Array:
         return self.law.value(at) * self.density.value(at)
@@ -158,7 +160,29 @@ class _ExpansionColumn:
         return ratio * ratio
 
 
-_AnyColumn = _Column | _LawColumn | _ProductColumn | _ExpansionColumn
+class Relation(Protocol):
+    """A property against temperature (K) with its derivative; 1-d arrays in and out."""
+
+    def value(self, at: Array) -> Array: ...
+
+    def slope(self, at: Array) -> Array: ...
+
+
+@dataclass(frozen=True)
+class _RelatedExpansion:
+    """Expansion coefficient of a density that is a relation, -(d rho/dT)/rho."""
+
+    density: Relation
+
+    def value(self, at: Array) -> Array:
+        return -self.density.slope(at) / self.density.value(at)
+
+    def slope(self, at: Array) -> Array:
+        """Central difference: a relation gives no second derivative. Curvature and rounding stay below 1e-6."""
+        return (self.value(at + EXPANSION_STEP) - self.value(at - EXPANSION_STEP)) / (2.0 * EXPANSION_STEP)
+
+
+_AnyColumn = Relation
 
 
 @dataclass(frozen=True)
@@ -284,6 +308,28 @@ def constant(values: Mapping[str, float], name: str = "constants") -> Fluid:
         raise PropertyFault("table-empty", f"{name} has no constants", ", ".join(PROPERTIES))
     rows = tuple((key, 0.0, math.inf) for key, _ in made)
     return TableFluid(name, "constants stated in the calculation file", tuple(made), rows, 0.0)
+
+
+def related(
+    columns: Mapping[str, Relation],
+    span: tuple[float, float],
+    *,
+    law: ViscosityLaw | None = None,
+    name: str,
+    provider: str,
+) -> Fluid:
+    """A liquid whose properties are relations of temperature, good within ``span`` (K).
+
+    ``law`` gives kinematic viscosity, which is multiplied by the density.
+    """
+    made = dict(columns)
+    if "density" in made:
+        made["expansion coefficient"] = _RelatedExpansion(made["density"])
+        if law is not None:
+            made["viscosity"] = _LawColumn(law, made["density"])
+    ordered = tuple((key, made[key]) for key in PROPERTIES if key in made)
+    rows = tuple((key, *span) for key, _ in ordered)
+    return TableFluid(name, provider, ordered, rows, 0.0)
 
 
 def _viscosity(

@@ -73,11 +73,30 @@ def situation_page(card: Situation) -> tuple[Block, ...]:
         TableBlock(("When", "Method", "Because"), choices),
         Heading(2, "Methods"),
         Bullets(card.methods),
+        *_friction(card),
         Heading(2, "Assumes"),
         Bullets(card.assumes),
         *_sources(card.sources),
     ]
     return tuple(blocks)
+
+
+def _friction(card: Situation) -> list[Block]:
+    """How the pressure drop of a situation is found; nothing where it has no law of friction."""
+    friction = card.friction
+    if friction is None:
+        return []
+    blocks: list[Block] = [Heading(2, "Pressure drop beside the film"), Paragraph(f"Added up by {friction.dp}.")]
+    if friction.needs:
+        blocks.append(TableBlock(("Symbol", "Quantity", "Unit", "Choice"), _needs(friction.needs)))
+    if friction.groups:
+        blocks.append(TableBlock(("Symbol", "Quantity", "Relation"), tuple(
+            (group.symbol, group.quantity.name, write(group.relation)) for group in friction.groups)))
+    if friction.choose:
+        blocks.append(TableBlock(("When", "Friction law", "Because"), tuple(
+            (write(choice.when) if choice.when is not None else "otherwise", choice.use, choice.because)
+            for choice in friction.choose)))
+    return blocks
 
 
 def method_page(card: Method) -> tuple[Block, ...]:
@@ -87,6 +106,7 @@ def method_page(card: Method) -> tuple[Block, ...]:
               "flux": "It needs the heat flux."}[card.closes_on]
     blocks: list[Block] = [
         Heading(1, card.title),
+        *((Paragraph("A book's own card: house method."),) if card.house else ()),
         Paragraph(f"Method {card.id}; family {card.family}; state {card.state.status} since {card.state.since}."
                   f" Gives {card.gives}. {closes}{at}"),
         Heading(2, "Needs"),

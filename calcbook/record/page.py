@@ -14,6 +14,10 @@ from calcbook.record.life import Life
 from calcbook.record.software import Software
 
 
+# What a book's own card is called wherever the record stands on it.
+HOUSE_METHOD = "house method"
+
+
 @dataclass(frozen=True)
 class Page:
     """One record in the making."""
@@ -73,6 +77,10 @@ class Page:
                     if source.cite == cite:
                         return reference_id(card, place)
         return cite
+
+    def is_house(self, card: str) -> bool:
+        """Whether a used card is the book's own."""
+        return any(used.id == card and getattr(used, "house", False) for used in self.cards())
 
     def methods(self) -> tuple[Method, ...]:
         """The method cards that were used."""

@@ -93,8 +93,8 @@ class StepTexts:
             quantity=_quantity(step.title, step.symbol),
             relation=self.relation(step),
             values=values[SERVICE],
-            clean=value_text(row.clean, kind),
-            service=value_text(row.service, kind),
+            clean=_shown_value(step, row.clean),
+            service=_shown_value(step, row.service),
             unit=unit_text(kind.unit) if kind is not None else "1",
             basis=self._basis(step, row),
             clean_values=values[CLEAN],
@@ -312,6 +312,13 @@ def _quantity(title: str, symbol: str) -> str:
     if title in ("", symbol):
         return written
     return title if symbol in title.split() else f"{title} {written}"
+
+
+def _shown_value(step: ChainStep, value: float | bool) -> str:
+    """The printed value of a row; one read from a table keeps so many digits that its cell is recognised."""
+    if isinstance(step.operation, LookupOperation) and not math.isnan(plain(value)):
+        return number(plain(value), LISTED_DIGITS)
+    return value_text(value, step.kind)
 
 
 def _listed(symbols: Iterable[str], arguments: Values) -> str:

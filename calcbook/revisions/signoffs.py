@@ -39,6 +39,11 @@ def today() -> datetime.date:
     return datetime.date.today()
 
 
+def lies_ahead(date: str) -> bool:
+    """Whether a date (YYYY-MM-DD) lies in the future."""
+    return date > today().isoformat()
+
+
 # --- what was signed -------------------------------------------------------------------------------
 
 

@@ -304,3 +304,34 @@ def test_faults_of_fins(tmp_path):
 
 def test_figures_of_the_tests_are_used():
     assert set(FIGURES) <= set(givens(**FIGURES).replace(":", " ").split())
+
+
+def without_temperatures(material: str) -> str:
+    body = finned_tube(material=material).replace("coefficient: h_a, temperature: T_a", "coefficient: h_a")
+    water = "stream: water, situation: inside-tube"
+    return body.replace(water, "coefficient: {value: 5000 W/(m^2 K), source: test}").replace(
+        "material: carbon-steel-plain-incropera", "conductivity: {value: 50 W/(m K), source: test}"
+    )
+
+
+@pytest.mark.parametrize("condition", CONDITIONS)
+def test_fins_without_temperatures(tmp_path, condition):
+    """U stands without bulk temperatures; its slopes are those of differences."""
+    chain, solution = solved(tmp_path, without_temperatures("conductivity: k_f"), condition)
+    assert not chain.has_temperatures
+    names = ("air film", "dust", "fins of air film")
+    series = sum(solution.number(chain.results[f"R {name}"]) for name in names)
+    fouling = 0.0003 if condition == SERVICE else 0.0
+    surface = solution.number("fins of air film/fin-overall-surface/eta")
+    ratio = solution.number("geometry/A_tf") / solution.number("circuit/A_o")
+    assert series == pytest.approx((1 / 45.0 + fouling) / (surface * ratio), rel=1e-12)
+    inputs, wanted = chain.case_inputs(""), chain.results["U"]
+    slopes = derivatives(chain, inputs, condition, (wanted,))[wanted]
+    for key in ("given/h_a", "given/k_f", "given/H", "given/p"):
+        assert float(slopes[key]) == pytest.approx(
+            difference(chain, inputs, condition, key, wanted), rel=1e-6
+        )
+
+
+def test_a_conductivity_from_a_card_needs_temperatures(tmp_path):
+    assert "temperature-missing" in codes(tmp_path, without_temperatures("material: aluminium-1100-crc"))

@@ -68,7 +68,9 @@ def test_slopes_follow_the_values() -> None:
     temperatures = np.linspace(300.0, 600.0, 13)
     for name in ("latent heat", "surface tension", "saturation pressure"):
         step = 1e-4
-        difference = (line().value(name, temperatures + step) - line().value(name, temperatures - step)) / (2 * step)
+        difference = (line().value(name, temperatures + step) - line().value(name, temperatures - step)) / (
+            2 * step
+        )
         assert line().slope(name, temperatures) == pytest.approx(difference, rel=1e-6)
 
 
@@ -113,7 +115,9 @@ print([float(item).hex() for row in found for item in row], "CoolProp" in sys.mo
 """
 
 
-def test_a_warm_run_gives_the_same_bits_without_the_backend(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+def test_a_warm_run_gives_the_same_bits_without_the_backend(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
     monkeypatch.setenv("CALCBOOK_CACHE", str(tmp_path))
     clear_memory()
     cold, warm = (

@@ -113,7 +113,7 @@ def _case(case: CaseOutcome, page: Page) -> list[Block]:
                 tuple(criterion_row(item, page) for item in case.criteria),
             )
         )
-    return [*blocks, *_case_assumptions(case, page), *_case_checks(case), *_case_items(case)]
+    return [*blocks, *_case_assumptions(case, page), *_case_checks(case, page), *_case_items(case)]
 
 
 def _restated(case: CaseOutcome, page: Page) -> Table:
@@ -168,11 +168,11 @@ def _case_assumptions(case: CaseOutcome, page: Page) -> list[Block]:
     return [Table(("Decided in this case", "Assumption", "Decided by"), rows)]
 
 
-def _case_checks(case: CaseOutcome) -> list[Block]:
+def _case_checks(case: CaseOutcome, page: Page) -> list[Block]:
     """The checks that are not within, each; the others counted."""
     within = [check for check in case.checks if check.state in ("within", "not counting")]
     rows = tuple(
-        (check.id, check.condition, check.figure, check.limit, verdict(check), check.level, check.accepted)
+        (check.id, check.condition, check.figure, check.limit, verdict(check, page.is_house(check.card)), check.level, check.accepted)
         for check in case.checks
         if check not in within
     )

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from calcbook.formulas.names import written_name
 from calcbook.record.blocks import Block, Heading, Paragraph, Table
-from calcbook.record.page import Page, reference_id
+from calcbook.record.page import HOUSE_METHOD, Page, reference_id
 
 
 def references(page: Page) -> list[Block]:
@@ -15,7 +15,7 @@ def references(page: Page) -> list[Block]:
 def _publications(page: Page) -> list[Block]:
     """One row per publication of each card, numbered within the card, so that no number moves."""
     rows = tuple(
-        (reference_id(card.id, place), source.cite, source.supports or "the card", source.standing)
+        (reference_id(card.id, place), source.cite, source.supports or "the card", _standing(page, card.id, source.standing))
         for card in page.cards()
         for place, source in enumerate(card.sources, 1)
     )
@@ -29,6 +29,11 @@ def _publications(page: Page) -> list[Block]:
         Paragraph(words),
         Table(("Reference", "Publication", "What it supports", "Standing"), rows),
     ]
+
+
+def _standing(page: Page, card: str, standing: str) -> str:
+    """How a source stands, and whether it belongs to a book's own card."""
+    return f"{HOUSE_METHOD}; {standing}" if page.is_house(card) else standing
 
 
 def _documents(page: Page) -> list[Block]:

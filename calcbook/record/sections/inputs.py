@@ -8,8 +8,11 @@ from calcbook.calcfile.calculation import Assumption, FluidText, Given
 from calcbook.chain.films import SATURATION_FIGURES
 from calcbook.chain.fluids import BoilingOperation, FixedOperation, PropertyOperation
 from calcbook.chain.outcome import PropertyRow
+from calcbook.chain.petroleum import CARDS
 from calcbook.chain.types import SERVICE, Input
+from calcbook.formulas import write
 from calcbook.formulas.names import written_name
+from calcbook.library.cards import Assignment
 from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Table
 from calcbook.record.numbers import AS_GIVEN_DIGITS, NOT_USED, celsius, number, unit_text, value_text, with_unit
 from calcbook.record.page import Page
@@ -22,6 +25,7 @@ PROPERTY_COLUMNS = (
     ("heat capacity", "cp, J/(kg·K)", 5),
     ("Prandtl number", "Pr", 5),
     ("expansion coefficient", "β, 1/K", 5),
+    ("saturation mole fraction", "x_ws", 5),
 )
 PASCALS_OF_BAR = 1e5
 
@@ -44,7 +48,31 @@ def givens(page: Page) -> list[Block]:
     for stream in page.calculation.streams.values():
         if stream.fluid is not None and stream.fluid.kind in ("table", "constants"):
             blocks += _fluid(stream.name, stream.fluid)
+        if stream.fluid is not None and stream.fluid.kind == "petroleum":
+            blocks += _petroleum(stream.name, stream.fluid, page)
     return blocks
+
+
+def _petroleum(stream: str, fluid: FluidText, page: Page) -> list[Block]:
+    """A petroleum liquid: each property with the relations of its card, and the viscosity as written."""
+    rows = []
+    for name, card in CARDS.items():
+        method = page.chain.library.method(card)
+        lines = (line for line in method.lines if isinstance(line, Assignment))
+        texts = [f"{written_name(line.symbol)} = {write(line.relation)}" for line in lines]
+        texts += [f"{written_name(symbol)} = {text}" for symbol, (_, text, _) in method.constants.items()]
+        rows.append((name, card, "; ".join(texts)))
+    points = "; ".join(f"{temperature.text}: {viscosity.text}" for temperature, viscosity in fluid.astm)
+    if points:
+        rows.append(("viscosity", "ASTM D341, times the density", points))
+    return [
+        Heading(3, f"Fluid {fluid.name} of stream {stream}"),
+        Paragraph(
+            f"A petroleum liquid ({fluid.product or 'no product stated'}) by its relative density. Source:"
+            f" {fluid.source or 'no source'}."
+        ),
+        Table(("Property", "Card", "Relations or points"), tuple(rows)),
+    ]
 
 
 def _fluid(stream: str, fluid: FluidText) -> list[Block]:
@@ -165,13 +193,15 @@ def _saturation_rows(page: Page) -> tuple[tuple[str, ...], ...]:
     found = {}
     for row in (row for term in page.base.chains for row in term.rows):
         operation, kind = row.step.operation, row.step.kind
-        on_line = isinstance(operation, PropertyOperation) and operation.property in SATURATION_FIGURES
-        if kind is None or not (on_line or isinstance(operation, BoilingOperation | FixedOperation)):
+        if kind is None or not isinstance(operation, PropertyOperation | BoilingOperation | FixedOperation):
+            continue
+        if isinstance(operation, PropertyOperation) and operation.property not in SATURATION_FIGURES:
             continue
         owner, _, place = row.step.id.removeprefix("stream ").rpartition("/")[0].partition("/")
-        stream = owner if row.step.id.startswith("stream ") else streams[id(operation.source)]  # type: ignore[union-attr]
+        stream = owner if row.step.id.startswith("stream ") else streams[id(operation.source)]
         values = tuple(value_text(value, kind) for value in (row.clean, row.service))
-        found[row.step.id] = (stream, place or "saturation", kind.name, *values, unit_text(kind.unit), row.step.basis)
+        unit, provider = unit_text(kind.unit), row.step.basis
+        found[row.step.id] = (stream, place or "saturation", kind.name, *values, unit, provider)
     return tuple(found.values())
 
 

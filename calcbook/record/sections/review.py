@@ -7,7 +7,7 @@ from collections.abc import Callable
 from calcbook.chain.types import CONDITIONS
 from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Quote, Table
 from calcbook.record.numbers import celsius, in_report_unit, percent
-from calcbook.record.page import Page, case_name, counted
+from calcbook.record.page import HOUSE_METHOD, Page, case_name, counted
 from calcbook.record.sections.head import confirmation
 from calcbook.record.sections.validity import residual
 
@@ -83,13 +83,20 @@ def _ranges(page: Page) -> str:
 
 def _wall_phase(page: Page) -> str:
     checks = [check for check in page.every_check() if check.card == "wall phase"]
+    meant = [
+        f"{branch.name} ({branch.situation.changes_phase})"
+        for group in (page.chain.inner, page.chain.outer)
+        for branch in group.branches
+        if branch.situation is not None and branch.situation.changes_phase
+    ]
+    change = f" A change of phase is meant: {', '.join(meant)}." if meant else ""
     failed = [check for check in checks if check.state != "within"]
     if not checks:
         return "No film has a fluid whose phase at the wall could be checked."
     if not failed:
-        return f"{len(checks)} checks against boiling, condensing and freezing at the wall, all within."
+        return f"{len(checks)} checks against boiling, condensing and freezing at the wall, all within.{change}"
     first = f"{failed[0].figure}, limit {failed[0].limit}"
-    return f"{len(failed)} of {len(checks)} checks at the wall are not within: {first}."
+    return f"{len(failed)} of {len(checks)} checks at the wall are not within: {first}.{change}"
 
 
 def _basis(page: Page) -> str:
@@ -250,6 +257,7 @@ def _triggered(page: Page) -> list[str]:
         *_negative(page),
         *_excess(page),
         *_trial(page),
+        *_house(page),
         *_criterion(page),
     ]
 
@@ -326,6 +334,15 @@ def _trial(page: Page) -> list[str]:
         card.id for card in page.cards() if getattr(getattr(card, "state", None), "status", "") == "trial"
     ]
     return [f"The card {name} is on trial: no figure from outside bears it out yet." for name in trial]
+
+
+def _house(page: Page) -> list[str]:
+    return [
+        f"The card {card.id} is a {HOUSE_METHOD}: it rests on the plant's own data and holds for the equipment that they"
+        " were taken on; no publication bears it out."
+        for card in page.cards()
+        if getattr(card, "house", False)
+    ]
 
 
 def _criterion(page: Page) -> list[str]:

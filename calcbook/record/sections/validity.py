@@ -7,7 +7,7 @@ from calcbook.chain.types import CONDITIONS
 from calcbook.quantities import in_unit
 from calcbook.record.blocks import Block, Heading, Paragraph, Table
 from calcbook.record.numbers import CONCLUSION_DIGITS, NOT_USED, number, percent, report_unit, unit_text
-from calcbook.record.page import Page, counted
+from calcbook.record.page import HOUSE_METHOD, Page, counted
 
 PUBLISHED = "published"
 RESIDUAL_DIGITS = 2
@@ -71,14 +71,16 @@ def _rows(page: Page) -> list[tuple[str, ...]]:
         cells = []
         for condition in reversed(CONDITIONS):
             there = found.get(condition)
-            cells += [there.figure, verdict(there)] if there is not None else [NOT_USED, NOT_USED]
+            cells += [there.figure, verdict(there, page.is_house(there.card))] if there is not None else [NOT_USED, NOT_USED]
         limits = dict.fromkeys(check.limit for check in found.values())
         rows.append((name, "; ".join(limits), *cells, one.level, one.because, _source(one, page)))
     return rows
 
 
-def verdict(check: CheckResult) -> str:
-    """The state of a check in words that do not say more than the standing of its limit."""
+def verdict(check: CheckResult, house: bool = False) -> str:
+    """The state of a check in words that do not say more than the standing of its limit, or that it is a book's own."""
+    if house and check.state in ("within", "outside"):
+        return f"{check.state} ({HOUSE_METHOD})"
     if check.state == "within":
         return (
             "within published range"
@@ -107,9 +109,10 @@ def _standing(standing: str) -> str:
 
 def _source(check: CheckResult, page: Page) -> str:
     """Where a limit comes from: a reference of section 15, or its standing alone."""
+    house = f"{HOUSE_METHOD}; " if page.is_house(check.card) else ""
     if not check.source or check.source == check.standing:
-        return check.standing
-    return f"{page.reference(check.card, check.source)}; {check.standing}"
+        return house + check.standing
+    return house + f"{page.reference(check.card, check.source)}; {check.standing}"
 
 
 # --- cross-check ------------------------------------------------------------------------------------
