@@ -200,6 +200,11 @@ class _Analysis:
             if "heat flux" in table:
                 put(f"heat_flux_{condition}", solution.number(table["heat flux"]), "heat flux", f"heat flux, {condition}")
                 put(f"heat_flow_{condition}", solution.number(table["heat flow"]), "heat flow", f"heat flow, {condition}")
+        for name in table:
+            if name.startswith("dT "):
+                for condition, solution in reversed(solutions.items()):
+                    put(f"{name} {condition}", solution.number(table[name]), "temperature difference",
+                        f"temperature change of {name.removeprefix('dT ')} that the heat flow implies, {condition}")
         clean, service = (results[f"U_{condition}"].value for condition in CONDITIONS)
         put("cleanliness", service / clean, "ratio", "cleanliness, U_service/U_clean")
         put("excess_surface", clean / service - 1.0, "ratio", "excess surface, U_clean/U_service − 1")
@@ -636,9 +641,19 @@ def _branch_notes(branch: Branch, solutions: Mapping[str, Solution]) -> list[str
     if branch.situation is None:
         return [f"{branch.name}: {service.because}."]
     if clean is service:
-        return [f"{branch.name}: {service.method.title} ({_card_words(service)}), {service.because}."]
+        return [f"{branch.name}: {service.method.title} ({_card_words(service)}), {service.because}.",
+                *_accuracy_words(branch, service)]
     return [f"{branch.name}, service: {service.method.title} ({service.method.id}), {service.because}.",
             f"{branch.name}, clean: {clean.method.title} ({clean.method.id}), {clean.because}."]
+
+
+def _accuracy_words(branch: Branch, candidate: Candidate) -> list[str]:
+    """How good the method is said to be, and by whom."""
+    stated = candidate.method.accuracy
+    if stated is None:
+        return [f"{branch.name}: no accuracy of {candidate.method.id} is stated."]
+    return [f"{branch.name}: accuracy of {candidate.method.id} within {stated.within}, {stated.coverage}; stated by"
+            f" {stated.stated_by} (standing: {stated.standing})."]
 
 
 def _controlling(terms: tuple[TermRow, ...]) -> tuple[str, float]:

@@ -83,8 +83,22 @@ class _Builder:
         if self.collector or basis is None or elements is None:
             self._mark_unused()
             return None
-        circuit, results = lay_out_circuit(scope, elements, shape, basis)
+        circuit, results = lay_out_circuit(scope, elements, shape, basis, self.streams)
+        self.checks += self._heat_balance(elements, results)
         return self._finished(elements, shape, basis, circuit, results)
+
+    def _heat_balance(self, elements: tuple[Element, ...], results: dict[str, str]) -> list[ChainCheck]:
+        """A caution where a stream would change its temperature by more than its stated mean can stand for."""
+        first, last = elements[0], elements[-1]
+        assert isinstance(first, Group) and isinstance(last, Group)
+        limit = Limit("temperature change", parse_expression("dT <= abs(T_in - T_out)/2"), "caution",
+                      "one mean temperature stands for the stream only while its change is small beside the difference"
+                      " of the streams", "common practice", "common practice", self.calculation.place)
+        return [
+            ChainCheck(f"{name.removeprefix('dT ')} / heat balance / temperature change", name.removeprefix("dT "),
+                       "heat balance", limit, {"dT": bound, "T_in": first.bulk, "T_out": last.bulk})
+            for name, bound in results.items() if name.startswith("dT ")
+        ]
 
     def _finished(self, elements: tuple[Element, ...], shape: Shape, basis: int, circuit: tuple[ChainStep, ...],
                   results: dict[str, str]) -> Chain:
@@ -730,12 +744,12 @@ def _kind_of_dimension(dim: tuple, reading: str) -> QuantityKind:
     return _unnamed("x", dim)
 
 
-def lay_out_circuit(scope: Scope, elements: tuple[Element, ...], shape: Shape, basis: int
+def lay_out_circuit(scope: Scope, elements: tuple[Element, ...], shape: Shape, basis: int, streams: dict[str, StreamState]
                     ) -> tuple[tuple[ChainStep, ...], dict[str, str]]:
     """The steps from film coefficients and resistances to U on every surface, and the names of results."""
     from calcbook.chain.circuit import Circuit
 
-    return Circuit(scope, elements, shape, basis).lay_out()
+    return Circuit(scope, elements, shape, basis, streams).lay_out()
 
 
 __all__ = ["QuantityFault", "RelationOperation", "build", "follows_temperature"]

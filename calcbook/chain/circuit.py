@@ -2,16 +2,21 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
+
 from calcbook.chain.scope import Scope
 from calcbook.chain.surfaces import Shape
-from calcbook.chain.types import ChainStep, Element, Group, Layer
+from calcbook.chain.types import ChainStep, Element, Group, Layer, StreamState
 from calcbook.formulas import parse_expression
+from calcbook.library import vocabulary
 
 
 class Circuit:
     """Lays out the circuit steps of one chain."""
 
-    def __init__(self, scope: Scope, elements: tuple[Element, ...], shape: Shape, basis: int):
+    def __init__(self, scope: Scope, elements: tuple[Element, ...], shape: Shape, basis: int,
+                 streams: Mapping[str, StreamState]):
+        self.streams = streams
         self.scope = scope
         self.elements = elements
         self.shape = shape
@@ -67,6 +72,28 @@ class Circuit:
         self.results["heat flow"] = self._step("Q", "Q", "heat flow, inside to outside", f"q_{mark}*A_{mark}",
                                                {f"q_{mark}": flux, f"A_{mark}": self.shape.surfaces[self.basis].area},
                                                "circuit", "heat flow")
+
+        self._implied_changes()
+
+    def _implied_changes(self) -> None:
+        """What the heat flow does to each stream of one phase whose mass flow is known: dT = Q/(m·cp).
+
+        It stands beside the stated mean temperature, which it must not contradict.
+        """
+        for group in (self.elements[0], self.elements[-1]):
+            assert isinstance(group, Group)
+            for branch in group.branches:
+                stream = self.streams.get(branch.stream)
+                if branch.kind != "film" or stream is None or not stream.mass_flow or stream.is_saturated:
+                    continue
+                capacity = self.scope.step(
+                    f"circuit/cp {branch.stream}", "cp", f"heat capacity of {branch.stream}", "circuit",
+                    stream.operation("heat capacity"), stream.state_inputs(stream.temperature), stream.fluid_name,
+                    vocabulary()["heat capacity"])
+                self.results[f"dT {branch.stream}"] = self._step(
+                    f"dT {branch.stream}", "dT", f"temperature change of {branch.stream} that Q implies", "abs(Q)/(m*cp)",
+                    {"Q": self.results["heat flow"], "m": stream.mass_flow, "cp": capacity}, "heat balance of the stream",
+                    "temperature difference")
 
     def _root_temperatures(self) -> None:
         """Where a film has fins, its surface temperature at their root: there it lies furthest from the bulk."""

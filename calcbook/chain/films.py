@@ -24,8 +24,8 @@ PROPERTY_SYMBOLS = {
     "cp": "heat capacity",
     "beta": "expansion coefficient",
 }
-# Quantities without a meaning of their own: a step of that symbol is called by its symbol.
-PLAIN = ("ratio", "number", "angle")
+# Symbols that mean one thing in every card: a step of another symbol is called by its symbol.
+NAMED_GROUPS = ("Re", "Pr", "Nu", "Gr", "Ra", "Gz", "Pe", "f")
 PLACE_MARKS = {
     "bulk": "b",
     "film": "f",
@@ -625,7 +625,7 @@ class FilmScope:
 
 def _kind_of_symbol(symbol: str):  # type: ignore[no-untyped-def]
     for kind in vocabulary().values():
-        if kind.symbol == symbol and kind.dimension == DIMENSIONLESS and not kind.flag and kind.name not in PLAIN:
+        if kind.symbol == symbol and symbol in NAMED_GROUPS and kind.dimension == DIMENSIONLESS:
             return kind
     return next((kind for kind in vocabulary().values() if kind.symbol == symbol and symbol in ("h", "R", "q", "q_chf", "dp")), None)
 

@@ -233,6 +233,11 @@ def assumptions_of(chain: Chain, solutions: Mapping[str, Solution]) -> tuple[Run
     sides = {layer.surface for layer in chain.elements if getattr(layer, "kind", "") == "fouling"}
     if not sides:
         say("fouling", "No fouling term is stated: clean and service are the same.", "the list of resistances", "U")
+    else:
+        middle = (len(chain.surfaces) - 1) / 2.0
+        for side, there in (("inside", min(sides) < middle), ("outside", max(sides) > middle)):
+            if not there:
+                say(f"fouling/{side}", f"No fouling is taken on the {side}.", "the list of resistances", "U")
     return tuple(found.values())
 
 

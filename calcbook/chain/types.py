@@ -239,6 +239,11 @@ class StreamState:
     saturation: str = ""
     non_condensable: str = ""
 
+    @property
+    def is_saturated(self) -> bool:
+        """Whether the stream stands on its saturation line: heat then changes its phase, not its temperature."""
+        return bool(self.saturation)
+
     def operation(self, name: str, keeps_phase: bool = False) -> PropertyOperation:
         """The operation that gives a property of this stream, at the bulk or (``keeps_phase``) elsewhere."""
         return PropertyOperation(self.fluid, name, self.phase, bool(self.pressure), bool(self.fraction), keeps_phase)

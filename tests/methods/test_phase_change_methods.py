@@ -637,7 +637,7 @@ def test_pool_boiling_rises_with_heat_flux_by_less_than_its_first_power(fluid: s
 
 LIBRARY = Library()
 # Why each stays: the exponent of the 2010 form has no printed value away from 20 kW/m2; the printed mean lies
-# 2 % from its integral; no reference has the factors of a slow horizontal flow, or Chen's curves as fitted here.
+# 2 % from its integral; no reference has the factors of slow flow, or Chen's curves as fitted here.
 UNCOVERED = {
     "gorenflo-2010": {("relation of n", "0.95"), ("relation of n", "0.3")},
     "shah-1979-condensation-mean": {("relation of h", "0.55")},

@@ -254,6 +254,8 @@ def _triggered(page: Page) -> list[str]:
         *_preliminary(page),
         *_hot_surface(page),
         *_wall(page),
+        *_outside(page),
+        *_undecided(page),
         *_negative(page),
         *_excess(page),
         *_trial(page),
@@ -297,6 +299,33 @@ def _wall(page: Page) -> list[str]:
         for check in page.every_check()
         if check.card == "wall phase" and check.state in ("outside", "accepted")
     ]
+
+
+def _outside(page: Page) -> list[str]:
+    """Cautions whose limit is not held: shown, not blocking, and not to be overlooked."""
+    return [
+        f"{check.id}, case {case_name(check.case)}, {check.condition}: {check.figure}, limit {check.limit}:"
+        f" outside ({check.because})."
+        for check in page.every_check()
+        if check.level == "caution" and check.state == "outside"
+    ]
+
+
+def _undecided(page: Page) -> list[str]:
+    """Methods within their range with which a criterion on U in service has another verdict."""
+    lines = []
+    for item in page.base.criteria:
+        if not item.that.startswith(("U_service >", "U_service <")):
+            continue
+        sign = 1.0 if ">" in item.that else -1.0
+        for row in page.solved.cross:
+            met = (row.overall - item.limit) * sign >= 0.0
+            if not row.left_out and met != item.met:
+                lines.append(
+                    f"{item.id} ({item.that}) depends on the method: with {row.method} on {row.term}, within its"
+                    f" range here, it is {'met' if met else 'not met'}."
+                )
+    return lines
 
 
 def _negative(page: Page) -> list[str]:
