@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from functools import cache
+from functools import cache, partial
 from pathlib import Path
 from typing import Any
 
@@ -115,13 +115,13 @@ def _solved(calculation: Calculation, library: Library, collector: Collector) ->
 
 
 def check_house_cards(chain: Chain, collector: Collector) -> None:
-    """Hold the book's own cards that a chain uses to the rules of the library: check points, units, states."""
+    """Hold the book's own cards that a chain uses to the rules of the library, check points first."""
     from calcbook.library.checking import check_material, check_method
 
     methods, materials = _cards_of(chain)
     for name in methods:
         if chain.library.method(name).house:
-            _collected(lambda card: check_method(card, chain.library), chain.library.method(name), collector)
+            _collected(partial(check_method, library=chain.library), chain.library.method(name), collector)
     for name in materials:
         if chain.library.material(name).house:
             _collected(check_material, chain.library.material(name), collector)

@@ -11,7 +11,14 @@ import numpy as np
 from calcbook.chain.checks import apply_acceptances, evaluate_check
 from calcbook.chain.circuit import branch_coefficient
 from calcbook.chain.films import SATURATED_SIDES
-from calcbook.chain.findings import assumptions_of, celsius, jump_items, root_items, stream_findings, wall_checks
+from calcbook.chain.findings import (
+    assumptions_of,
+    celsius,
+    jump_items,
+    root_items,
+    stream_findings,
+    wall_checks,
+)
 from calcbook.chain.fluids import PropertyOperation
 from calcbook.chain.outcome import (
     BranchRow,
@@ -29,7 +36,13 @@ from calcbook.chain.outcome import (
     TermRow,
 )
 from calcbook.chain.plausible import band_checks
-from calcbook.chain.pressure import drops, evaluate_pressure_drops, law_of, pressure_drop_checks, pressure_notes
+from calcbook.chain.pressure import (
+    drops,
+    evaluate_pressure_drops,
+    law_of,
+    pressure_drop_checks,
+    pressure_notes,
+)
 from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.solve import Solution, solve
 from calcbook.chain.types import (
@@ -47,8 +60,8 @@ from calcbook.chain.types import (
 )
 from calcbook.faults import Collector, nearest_names, shown
 from calcbook.library import vocabulary
-from calcbook.properties import SATURATION_FRACTION
 from calcbook.library.operations import run
+from calcbook.properties import SATURATION_FRACTION
 from calcbook.quantities import QuantityFault, as_kind
 
 CONTROLLING_SHARE = 0.5

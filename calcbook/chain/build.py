@@ -9,8 +9,8 @@ from calcbook.calcfile.calculation import Derived, Term, Value
 from calcbook.calcfile.links import CURRENT
 from calcbook.chain.films import FilmScope
 from calcbook.chain.fins import FinnedSide, check_finned_situation, lay_out_fins, lay_out_fins_layer
-from calcbook.chain.pressure import asked_symbols, lay_out_pressure_drop
 from calcbook.chain.petroleum import lay_out_cards
+from calcbook.chain.pressure import asked_symbols, lay_out_pressure_drop
 from calcbook.chain.scope import Scope
 from calcbook.chain.services import check_services
 from calcbook.chain.streams import lay_out_stream

@@ -123,7 +123,6 @@ class PropertyOperation:
         phase = self.phase
         if self.keeps_phase and not phase:
             phase = "liquid" if named["liquid"] else "gas"
-        fraction = named.get("w")
         return read(self.source.state(named.get("p"), named.get("w"), phase), temperature)
 
 

@@ -35,8 +35,8 @@ PRODUCTS = {
     "fuel oil": "fuel",
     "lubricating oil": "lubricating",
 }
-# K. The cards' own limits are checks at the bulk; beyond this span, from waxy solids to cracking, there are no
-# values at all (common practice).
+# K. The cards' own limits are checks at the bulk; beyond this span, from waxy solids to cracking, there are
+# no values at all (common practice).
 SPAN = (233.15, 673.15)
 
 
@@ -65,8 +65,9 @@ class CardColumn:
             partial = step.operation.slopes(arguments, value, moving)
             values[step.name] = value
             if moving:
-                slopes[step.name] = sum((partial[symbol] * slopes[step.inputs[symbol]] for symbol in moving),
-                                        np.zeros_like(at))
+                slopes[step.name] = sum(
+                    (partial[symbol] * slopes[step.inputs[symbol]] for symbol in moving), np.zeros_like(at)
+                )
         return values[self.program.result], slopes[self.program.result]
 
 
@@ -90,20 +91,32 @@ def petroleum(library: Library, text: FluidText, law: ViscosityLaw | None) -> Ca
 
 
 def lay_out_cards(scope: Scope, library: Library, streams: Mapping[str, StreamState]) -> list[ChainCheck]:
-    """The cards of petroleum streams made part of the calculation: their digest, and their limits at the bulk."""
+    """The cards of petroleum streams in the calculation: their digest, and their limits at the bulk."""
     checks = []
     for state in streams.values():
         if state.fluid.text.kind != "petroleum":
             continue
         owner = f"stream {state.name}"
         if not state.fluid.text.product:
-            scope.assume(f"{owner}/product", f"{state.name} expands like {next(iter(PRODUCTS))}.",
-                         "no product is stated with its relative density", owner)
+            scope.assume(
+                f"{owner}/product",
+                f"{state.name} expands like {next(iter(PRODUCTS))}.",
+                "no product is stated with its relative density",
+                owner,
+            )
         for card in (library.method(name) for name in CARDS.values()):
             scope.cards[f"method {card.id}"] = card.digest_text
             names = {"d": state.fraction, "T": state.temperature}
             for symbol, (value, _, dim) in card.constants.items():
                 names[symbol] = scope.constant(f"{owner}/{card.id}/{symbol}", np.asarray(value), dim)
-            checks += [ChainCheck(f"{owner} / {card.id} / {limit.id}", owner, card.id, limit,
-                                  {symbol: names[symbol] for symbol in limit.that.symbols}) for limit in card.limits]
+            checks += [
+                ChainCheck(
+                    f"{owner} / {card.id} / {limit.id}",
+                    owner,
+                    card.id,
+                    limit,
+                    {symbol: names[symbol] for symbol in limit.that.symbols},
+                )
+                for limit in card.limits
+            ]
     return checks

@@ -56,9 +56,11 @@ class Figure:
 
 
 def band_checks(chain: Chain, case: str, solution: Solution) -> list[CheckResult]:
-    """A caution for every figure of one condition that lies outside its plausible band or far from its service."""
+    """A caution for every figure of one condition outside its plausible band or far from its service."""
     known = bands()
-    found = [_outside(figure, known[figure.band], case, solution.condition) for figure in figures(chain, solution)]
+    found = [
+        _outside(figure, known[figure.band], case, solution.condition) for figure in figures(chain, solution)
+    ]
     if solution.condition == SERVICE:
         found += _service_checks(chain, case, solution)
     return [check for check in found if check is not None]
@@ -84,13 +86,19 @@ def _all_figures(chain: Chain, solution: Solution) -> Iterator[Figure]:
     if solution.condition == SERVICE:
         for element in chain.elements:
             # An allowance of nothing is stated on purpose.
-            if isinstance(element, Layer) and element.kind == "fouling" and solution.number(element.resistance) != 0.0:
+            if (
+                isinstance(element, Layer)
+                and element.kind == "fouling"
+                and solution.number(element.resistance) != 0.0
+            ):
                 yield Figure(element.name, "fouling allowance", solution.number(element.resistance))
     if "heat flux" in chain.results:
         yield Figure("U", "heat flux", abs(solution.number(chain.results["heat flux"])))
     if not any(wall.insulates for wall in walls):
         pair = frozenset(_side(chain, solution, group) for group in (chain.inner, chain.outer))
-        yield Figure("U", PAIRS.get(pair, "U of any uninsulated surface"), solution.number(chain.results["U"]))
+        yield Figure(
+            "U", PAIRS.get(pair, "U of any uninsulated surface"), solution.number(chain.results["U"])
+        )
 
 
 # --- dimensions and walls ---------------------------------------------------------------------------
@@ -132,7 +140,9 @@ def _dimensions(chain: Chain, solution: Solution) -> Iterator[Figure]:
     if len(round_surfaces) > 1:
         yield Figure("geometry", outer, solution.number(round_surfaces[1].diameter))
     if bundle:
-        yield Figure("geometry", "tube length", _stated(solution, _dimension(chain, "length"), "geometry", "length"))
+        yield Figure(
+            "geometry", "tube length", _stated(solution, _dimension(chain, "length"), "geometry", "length")
+        )
 
 
 @dataclass(frozen=True, slots=True)
@@ -160,7 +170,11 @@ def _walls(chain: Chain, solution: Solution) -> Iterator[_Wall]:
     terms = {term.name: term for term in chain.calculation.resistances if term.kind == "wall"}
     first = next(iter(terms), "")
     for element in chain.elements:
-        if not isinstance(element, Layer) or element.kind != "wall" or "resistance" in terms[element.name].values:
+        if (
+            not isinstance(element, Layer)
+            or element.kind != "wall"
+            or "resistance" in terms[element.name].values
+        ):
             continue
         term = terms[element.name]
         kind = chain.library.material(element.material).kind if element.material else ""
@@ -168,8 +182,10 @@ def _walls(chain: Chain, solution: Solution) -> Iterator[_Wall]:
             kind = "metal"
         thickness = _stated(solution, term.values.get("thickness"), term.name, "thickness")
         if chain.surfaces[element.surface].diameter and element.surface > 0:
-            before, after = (solution.number(chain.surfaces[index].diameter)
-                             for index in (element.surface - 1, element.surface))
+            before, after = (
+                solution.number(chain.surfaces[index].diameter)
+                for index in (element.surface - 1, element.surface)
+            )
             thickness = (after - before) / 2.0
         conductivity = _stated(solution, term.values.get("conductivity"), term.name, "conductivity")
         if element.material:
@@ -213,8 +229,14 @@ def _in_parallel(chain: Chain, solution: Solution) -> float:
 
 def _bands_of_metal(chain: Chain) -> Iterator[Band]:
     """The bands of speed that hold for the material of the first wall."""
-    material = next((element.material for element in chain.elements
-                     if isinstance(element, Layer) and element.kind == "wall"), "")
+    material = next(
+        (
+            element.material
+            for element in chain.elements
+            if isinstance(element, Layer) and element.kind == "wall"
+        ),
+        "",
+    )
     for band in bands().values():
         if material and any(material.startswith(start) for start in band.materials):
             yield band
@@ -247,19 +269,35 @@ def _side(chain: Chain, solution: Solution, group: Group) -> str:
 def _outside(figure: Figure, band: Band, case: str, condition: str) -> CheckResult | None:
     if band.low <= figure.value <= band.high:
         return None
-    return _caution(f"{figure.owner} / band / {band.name}", figure.owner, "band", case, condition, band.quantity,
-                    figure.value, (band.low, band.high), f"plausible band of {band.place}: {band.because}",
-                    band.source, band.standing)
+    return _caution(
+        f"{figure.owner} / band / {band.name}",
+        figure.owner,
+        "band",
+        case,
+        condition,
+        band.quantity,
+        figure.value,
+        (band.low, band.high),
+        f"plausible band of {band.place}: {band.because}",
+        band.source,
+        band.standing,
+    )
 
 
 def _service_checks(chain: Chain, case: str, solution: Solution) -> Iterator[CheckResult | None]:
     """Stated allowances and U against what is typical of the services that the file names."""
-    named = {term.name: term.texts["service"] for term in chain.calculation.resistances if "service" in term.texts}
+    named = {
+        term.name: term.texts["service"] for term in chain.calculation.resistances if "service" in term.texts
+    }
     for element in chain.elements:
         if isinstance(element, Layer) and element.name in named:
-            yield _far(element.name, typical(FOULING)[named[element.name]], solution.number(element.resistance), case)
+            yield _far(
+                element.name, typical(FOULING)[named[element.name]], solution.number(element.resistance), case
+            )
     if chain.calculation.report.service:
-        yield _far("U", typical(OVERALL)[chain.calculation.report.service], solution.number(chain.results["U"]), case)
+        yield _far(
+            "U", typical(OVERALL)[chain.calculation.report.service], solution.number(chain.results["U"]), case
+        )
 
 
 def _far(owner: str, usual: Typical, value: float, case: str) -> CheckResult | None:
@@ -268,16 +306,54 @@ def _far(owner: str, usual: Typical, value: float, case: str) -> CheckResult | N
     if not math.isfinite(value) or low <= value <= high:
         return None
     ends = tuple(dict.fromkeys(apart(end, ()) for end in (usual.low, usual.high)))
-    because = (f"typical of {usual.service} is {' to '.join(ends)} {unit_display(usual.quantity.unit)}; warned beyond a"
-               f" factor of {usual.far:g}")
-    return _caution(f"{owner} / typical / {usual.service}", owner, usual.card, case, SERVICE, usual.quantity, value,
-                    (low, high), because, "; ".join(usual.publications), usual.standing)
+    unit = unit_display(usual.quantity.unit)
+    because = (
+        f"typical of {usual.service} is {' to '.join(ends)} {unit}; warned beyond a factor of {usual.far:g}"
+    )
+    return _caution(
+        f"{owner} / typical / {usual.service}",
+        owner,
+        usual.card,
+        case,
+        SERVICE,
+        usual.quantity,
+        value,
+        (low, high),
+        because,
+        "; ".join(usual.publications),
+        usual.standing,
+    )
 
 
-def _caution(name: str, owner: str, card: str, case: str, condition: str, kind: QuantityKind, value: float,
-             ends: tuple[float, float], because: str, source: str, standing: str) -> CheckResult:
+def _caution(
+    name: str,
+    owner: str,
+    card: str,
+    case: str,
+    condition: str,
+    kind: QuantityKind,
+    value: float,
+    ends: tuple[float, float],
+    because: str,
+    source: str,
+    standing: str,
+) -> CheckResult:
     unit = unit_display(kind.unit)
     low, high = (apart(end, (value,)) for end in ends)
-    return CheckResult(name, owner, card, condition, case, f"{low} ≤ {kind.symbol} ≤ {high} {unit}",
-                       f"{kind.symbol} = {apart(value, ends)} {unit}", f"{low} to {high} {unit}", value, unit,
-                       "caution", "outside", because, source, standing)
+    return CheckResult(
+        name,
+        owner,
+        card,
+        condition,
+        case,
+        f"{low} ≤ {kind.symbol} ≤ {high} {unit}",
+        f"{kind.symbol} = {apart(value, ends)} {unit}",
+        f"{low} to {high} {unit}",
+        value,
+        unit,
+        "caution",
+        "outside",
+        because,
+        source,
+        standing,
+    )

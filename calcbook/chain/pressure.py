@@ -1,7 +1,7 @@
-"""Pressure drop beside a film: the friction law of its situation, chosen and added up. It never acts on U.
+"""Pressure drop beside a film: the friction law of its situation, chosen and added up. It never moves U.
 
-Its steps are kept apart from those of the film and are evaluated on the finished solution, so that nothing that
-the circuit closes on can depend on them.
+Its steps are kept apart from those of the film and are evaluated on the finished solution, so that nothing
+that the circuit closes on can depend on them.
 """
 
 from __future__ import annotations
@@ -38,7 +38,7 @@ FACTOR = "friction factor"
 
 
 def asked_symbols(film: FilmScope) -> set[str]:
-    """Symbols and quantity names that the pressure drop of a film's situation may take from the term's `with:`."""
+    """Symbols and quantity names that a film's pressure drop may take from the term's `with:`."""
     assert film.situation is not None
     friction = film.situation.friction
     if friction is None:
@@ -46,7 +46,9 @@ def asked_symbols(film: FilmScope) -> set[str]:
     needs = list(friction.needs)
     for method in (*(choice.use for choice in friction.choose), friction.dp):
         needs += [item.need for item in film.library.program(method).needs]
-    return {name for need in needs if need.quantity.name != FACTOR for name in (need.symbol, need.quantity.name)}
+    return {
+        name for need in needs if need.quantity.name != FACTOR for name in (need.symbol, need.quantity.name)
+    }
 
 
 def lay_out_pressure_drop(film: FilmScope) -> tuple[PressureDrop | None, str]:
@@ -64,15 +66,15 @@ def lay_out_pressure_drop(film: FilmScope) -> tuple[PressureDrop | None, str]:
     scope.collector = Collector()
     try:
         drop = _Layout(film, friction).laid_out()
-    except Faults as faults:
-        scope.collector.take(faults.faults)
+    except Faults as error:
+        scope.collector.take(error.faults)
         drop = None
-    faults, scope.collector = list(scope.collector), collector
-    if drop is not None and not faults:
+    found, scope.collector = list(scope.collector), collector
+    if drop is not None and not found:
         return drop, ""
     scope.steps, scope.assumptions, scope.used_in = steps, assumptions, used_in
-    collector.take([fault for fault in faults if fault.code not in LACKING])
-    return None, "; ".join(_reason(fault) for fault in faults)
+    collector.take([fault for fault in found if fault.code not in LACKING])
+    return None, "; ".join(_reason(fault) for fault in found)
 
 
 def _reason(fault: Fault) -> str:
@@ -91,10 +93,17 @@ class _Layout:
         assert situation is not None
         self.factor = f"{film.owner}/{FACTOR}"
         film.scope.dimensions[self.factor] = DIMENSIONLESS
-        dimensions = {**film.dimensions, FACTOR: self.factor} if self.friction.choose else dict(film.dimensions)
-        wider = replace(situation, needs=(*situation.needs, *self.friction.needs),
-                        groups=(*situation.groups, *self.friction.groups))
-        self.wide = replace(film, situation=wider, dimensions=dimensions, missing=set(), candidates=frozenset())
+        dimensions = (
+            {**film.dimensions, FACTOR: self.factor} if self.friction.choose else dict(film.dimensions)
+        )
+        wider = replace(
+            situation,
+            needs=(*situation.needs, *self.friction.needs),
+            groups=(*situation.groups, *self.friction.groups),
+        )
+        self.wide = replace(
+            film, situation=wider, dimensions=dimensions, missing=set(), candidates=frozenset()
+        )
 
     def laid_out(self) -> PressureDrop | None:
         laws: list[Candidate] = []
@@ -132,7 +141,7 @@ class _Layout:
         return Candidate(program.method, steps, result, checks, because, False, program.cards)
 
     def _check(self, check: ChainCheck) -> ChainCheck:
-        """A limit under a name of its own: the film may stand on the same card and have an answer of its own."""
+        """A limit under a name of its own: the film may stand on the same card with its own answer."""
         return replace(check, id=f"{check.owner} / {check.card} for pressure drop / {check.limit.id}")
 
 
@@ -151,12 +160,16 @@ def evaluate_pressure_drops(chain: Chain, solution: Solution) -> None:
             if branch.pressure_drop is not None and is_known(chain, group, branch.pressure_drop):
                 with np.errstate(all="ignore"):
                     found = _evaluated(branch.pressure_drop, solution, shared)
-                solution.values.update({name: value for name, value in found.items() if name not in solution.values})
+                solution.values.update(
+                    {name: value for name, value in found.items() if name not in solution.values}
+                )
 
 
 def is_known(chain: Chain, group: Group, drop: PressureDrop) -> bool:
     """Whether the solution holds what the pressure drop is made from."""
-    bound = {name for part in (*drop.laws, drop.total) for step in part.steps for name in step.inputs.values()}
+    bound = {
+        name for part in (*drop.laws, drop.total) for step in part.steps for name in step.inputs.values()
+    }
     return chain.has_temperatures or not bound & {group.surface_temperature, group.flux}
 
 
@@ -168,7 +181,7 @@ def law_of(drop: PressureDrop, solution: Solution) -> Candidate | None:
 
 
 def pressure_notes(chain: Chain, group: Group, solutions: Mapping[str, Solution]) -> list[str]:
-    """Which friction law acts beside each film of a group and why, or why no pressure drop is given."""
+    """Which friction law acts beside each film of a group and why, or why none does."""
     notes = []
     for branch in group.branches:
         drop = branch.pressure_drop
@@ -176,12 +189,17 @@ def pressure_notes(chain: Chain, group: Group, solutions: Mapping[str, Solution]
             if branch.no_pressure_drop:
                 notes.append(f"{branch.name}: no pressure drop is given: {branch.no_pressure_drop}.")
         elif not is_known(chain, group, drop):
-            notes.append(f"{branch.name}: no pressure drop is given: the temperature of its surface is not known.")
+            notes.append(
+                f"{branch.name}: no pressure drop is given: the temperature of its surface is not known."
+            )
         else:
             sentences = {condition: _law_words(drop, solutions[condition]) for condition in (SERVICE, CLEAN)}
             same = sentences[SERVICE] == sentences[CLEAN]
-            notes += [f"{branch.name}, pressure drop{'' if same else f', {condition}'}: {words}."
-                      for condition, words in sentences.items() if not same or condition == SERVICE]
+            notes += [
+                f"{branch.name}, pressure drop{'' if same else f', {condition}'}: {words}."
+                for condition, words in sentences.items()
+                if not same or condition == SERVICE
+            ]
     return notes
 
 
@@ -190,8 +208,14 @@ def _law_words(drop: PressureDrop, solution: Solution) -> str:
     law = law_of(drop, solution)
     if law is None:
         return f"{total.title} ({total.id})"
-    because = next((row.because for row in drop.choice
-                    if row.relation is None or bool(np.all(_holds(row, solution.values)))), "")
+    because = next(
+        (
+            row.because
+            for row in drop.choice
+            if row.relation is None or bool(np.all(_holds(row, solution.values)))
+        ),
+        "",
+    )
     return f"{total.title} ({total.id}) with {law.method.title} ({law.method.id}), {because}"
 
 
@@ -210,7 +234,7 @@ def _choice(drop: PressureDrop, values: Mapping[str, Array]) -> Array:
 
 
 def _evaluated(drop: PressureDrop, solution: Solution, shared: set[str]) -> dict[str, Array]:
-    """Every figure of a pressure drop. The film's own steps are made again for samples where it used another law."""
+    """Every figure of a pressure drop; the film's steps again, for samples where it used another law."""
     values = dict(solution.values)
 
     def make(steps: tuple[ChainStep, ...], wanted: Callable[[str], bool] = lambda name: True) -> None:
@@ -241,5 +265,9 @@ def pressure_drop_checks(chain: Chain, solution: Solution) -> list[ChainCheck]:
 
 def drops(chain: Chain) -> list[tuple[Group, Branch, PressureDrop]]:
     """Every pressure drop that this chain can give, with its film."""
-    return [(group, branch, branch.pressure_drop) for group in (chain.inner, chain.outer) for branch in group.branches
-            if branch.pressure_drop is not None and is_known(chain, group, branch.pressure_drop)]
+    return [
+        (group, branch, branch.pressure_drop)
+        for group in (chain.inner, chain.outer)
+        for branch in group.branches
+        if branch.pressure_drop is not None and is_known(chain, group, branch.pressure_drop)
+    ]

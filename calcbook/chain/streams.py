@@ -119,7 +119,7 @@ def _humidity(scope: Scope, stream: Stream, fluid: FluidSource, temperature: str
     operation = PropertyOperation(fluid, name, "gas", True, False)
     fraction = scope.step(f"{owner}/{name}", "x_ws", "mole fraction of water in saturated air", owner, operation,
                           {"T": temperature, "p": pressure}, fluid.at_fraction(None).provider,
-                          vocabulary()["mole fraction"])
+                          vocabulary()[name])
     return scope.relation_step(f"{owner}/humidity ratio", "W", "humidity ratio", owner,
                                parse_expression(HUMIDITY), {"phi": stated, "x_ws": fraction},
                                "mole fractions; 0.621945 is the molar mass of water over that of dry air", HUMIDITY_RATIO)

@@ -138,14 +138,15 @@ def check_situation(name: str, library: Library) -> None:
 
 def _check_friction(friction: Friction, library: Library, collector: Collector) -> None:
     """That the laws of a situation give a friction factor, and the card under `dp` a pressure drop."""
-    for method, gives in (*((choice.use, "f") for choice in friction.choose), (friction.dp, "dp")):
+    asked = (*((choice.use, "f", choice.where) for choice in friction.choose), (friction.dp, "dp", friction.where))
+    for method, gives, where in asked:
         try:
             card = library.program(method).method
         except Faults as faults:
             collector.take(faults.faults)
             continue
         if card.gives != gives:
-            collector.add("method-not-friction", friction.where, f"`{method}` gives {card.gives}, not {gives}",
+            collector.add("method-not-friction", where, f"`{method}` gives {card.gives}, not {gives}",
                           found=card.gives, expected=gives)
 
 

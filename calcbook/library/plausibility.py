@@ -11,7 +11,17 @@ from dataclasses import dataclass
 from functools import cache
 from pathlib import Path
 
-from calcbook.documents import Description, Fields, Key, Mapping, Node, Scalar, Sequence, read_file, read_mapping
+from calcbook.documents import (
+    Description,
+    Fields,
+    Key,
+    Mapping,
+    Node,
+    Scalar,
+    Sequence,
+    read_file,
+    read_mapping,
+)
 from calcbook.faults import Collector, Place, nearest_names, shown
 from calcbook.library.cards import STANDINGS, Source
 from calcbook.library.descriptions import SOURCE
@@ -79,7 +89,7 @@ EMISSIVITY = Description(
 
 @dataclass(frozen=True, slots=True)
 class Band:
-    """What a quantity usually is in one place, ``low`` to ``high`` in SI; ``texts`` are both ends as written."""
+    """What a quantity usually is in one place, ``low`` to ``high`` in SI; ``texts`` are those as written."""
 
     name: str
     quantity: QuantityKind
@@ -176,9 +186,16 @@ def typical(quantity: str, folder: Path = ALLOWANCES) -> dict[str, Typical]:
             rows = [row for row in card.rows if row.service == service]
             # The weakest standing of the publications is the standing of the range.
             standing = max((row.publication.standing for row in rows), key=STANDINGS.index)
-            found[service] = Typical(service, card.quantity, min(row.low for row in rows), max(row.high for row in rows),
-                                     card.far, card.id, tuple(dict.fromkeys(row.publication.cite for row in rows)),
-                                     standing)
+            found[service] = Typical(
+                service,
+                card.quantity,
+                min(row.low for row in rows),
+                max(row.high for row in rows),
+                card.far,
+                card.id,
+                tuple(dict.fromkeys(row.publication.cite for row in rows)),
+                standing,
+            )
     return found
 
 
@@ -200,21 +217,37 @@ def _items(path: Path, key: str) -> tuple[Node, ...]:
 def _band(fields: Fields, collector: Collector) -> Band:
     kind = _kind(fields, collector)
     ends, texts = _ends(fields, kind, collector)
-    return Band(fields.text("band"), kind, fields.text("place"), *ends, texts, _texts(fields.node("materials")),
-                fields.text("because"), fields.text("source"), fields.text("standing"))
+    return Band(
+        fields.text("band"),
+        kind,
+        fields.text("place"),
+        *ends,
+        texts,
+        _texts(fields.node("materials")),
+        fields.text("because"),
+        fields.text("source"),
+        fields.text("standing"),
+    )
 
 
 def _kind(fields: Fields, collector: Collector) -> QuantityKind:
     name = fields.text("quantity")
     known = vocabulary()
     if name not in known:
-        collector.add("quantity-unknown", fields.place_of("quantity"), f"the vocabulary has no quantity `{shown(name)}`",
-                      found=shown(name), nearest=nearest_names(name, known))
+        collector.add(
+            "quantity-unknown",
+            fields.place_of("quantity"),
+            f"the vocabulary has no quantity `{shown(name)}`",
+            found=shown(name),
+            nearest=nearest_names(name, known),
+        )
         return known["ratio"]
     return known[name]
 
 
-def _ends(fields: Fields, kind: QuantityKind, collector: Collector) -> tuple[tuple[float, float], tuple[str, str]]:
+def _ends(
+    fields: Fields, kind: QuantityKind, collector: Collector
+) -> tuple[tuple[float, float], tuple[str, str]]:
     """Both ends in SI, low below or at high, and as written."""
     texts = (fields.text("low"), fields.text("high"))
     ends = []
@@ -222,12 +255,23 @@ def _ends(fields: Fields, kind: QuantityKind, collector: Collector) -> tuple[tup
         try:
             ends.append(read_quantity(fields.text(key), kind).value)
         except QuantityFault as error:
-            collector.add(error.code, fields.place_of(key), error.message, found=error.found, expected=error.expected,
-                          nearest=error.nearest)
+            collector.add(
+                error.code,
+                fields.place_of(key),
+                error.message,
+                found=error.found,
+                expected=error.expected,
+                nearest=error.nearest,
+            )
             ends.append(float("nan"))
     if ends[0] > ends[1]:
-        collector.add("table-not-rising", fields.place_of("high"), "a range rises from low to high",
-                      found=f"{texts[0]} to {texts[1]}", expected="low below or at high")
+        collector.add(
+            "table-not-rising",
+            fields.place_of("high"),
+            "a range rises from low to high",
+            found=f"{texts[0]} to {texts[1]}",
+            expected="low below or at high",
+        )
     return (ends[0], ends[1]), texts
 
 
@@ -235,8 +279,13 @@ def _card(path: Path, collector: Collector) -> AllowanceCard:
     place = Place(path.name)
     fields = read_mapping(read_file(path, path.name).root, CARD, collector, place)
     if fields.text("allowances") != path.stem:
-        collector.add("card-id-differs", fields.place_of("allowances"), "the id differs from the file name",
-                      found=fields.text("allowances"), expected=path.stem)
+        collector.add(
+            "card-id-differs",
+            fields.place_of("allowances"),
+            "the id differs from the file name",
+            found=fields.text("allowances"),
+            expected=path.stem,
+        )
     kind = _kind(fields, collector)
     sources = tuple(
         Source(one.text("cite"), one.text("for"), one.text("standing"))
@@ -244,22 +293,43 @@ def _card(path: Path, collector: Collector) -> AllowanceCard:
         for one in (read_mapping(item, SOURCE, collector, item.place),)
     )
     rows = tuple(
-        row for item in _list(fields, "rows")
+        row
+        for item in _list(fields, "rows")
         if (row := _row(read_mapping(item, ROW, collector, item.place), kind, sources, collector)) is not None
     )
-    return AllowanceCard(path.stem, fields.text("title"), kind, float(fields.text("far") or 1.0), rows, sources,
-                         _texts(fields.node("notes")))
+    return AllowanceCard(
+        path.stem,
+        fields.text("title"),
+        kind,
+        float(fields.text("far") or 1.0),
+        rows,
+        sources,
+        _texts(fields.node("notes")),
+    )
 
 
-def _row(fields: Fields, kind: QuantityKind, sources: tuple[Source, ...], collector: Collector) -> TypicalRow | None:
+def _row(
+    fields: Fields, kind: QuantityKind, sources: tuple[Source, ...], collector: Collector
+) -> TypicalRow | None:
     number = fields.text("publication")
     if not number.isdecimal() or not 1 <= int(number) <= len(sources):
-        collector.add("limit-source-unknown", fields.place_of("publication"), "a row names one of the card's sources",
-                      found=shown(number), expected=f"1 to {len(sources)}")
+        collector.add(
+            "limit-source-unknown",
+            fields.place_of("publication"),
+            "a row names one of the card's sources",
+            found=shown(number),
+            expected=f"1 to {len(sources)}",
+        )
         return None
     ends, texts = _ends(fields, kind, collector)
-    return TypicalRow(fields.text("service"), fields.text("side"), *ends, texts, sources[int(number) - 1],
-                      fields.text("note"))
+    return TypicalRow(
+        fields.text("service"),
+        fields.text("side"),
+        *ends,
+        texts,
+        sources[int(number) - 1],
+        fields.text("note"),
+    )
 
 
 def _list(fields: Fields, key: str) -> tuple[Node, ...]:

@@ -322,7 +322,7 @@ def check_dimensions(program: Program) -> None:
             collector.add("dimension-slip", item.limit.where, f"limit `{item.limit.id}`: {error.message}")
     expected = result_dimension(program.method.gives)
     if expected is not None and dims[program.result] != expected:
-        collector.add("dimension-slip", program.method.where, "the result has another dimension than its symbol")
+        collector.add("dimension-slip", lines.get(program.method.gives, program.method.where), "the result has another dimension than its symbol")
     collector.stop_if_any()
 
 

@@ -1,7 +1,7 @@
 """Properties of fluids: pure fluids, mixtures, tables, stated constants; values and slopes on SI arrays.
 
-A fluid is made by ``pure``, ``mixture``, ``humid_air``, ``tabulated``, ``related`` or ``constant``; ``.at(pressure, phase)`` gives
-the object that answers. Backend fluids are answered from Chebyshev series that were compared with the
+A fluid is made by ``pure``, ``mixture``, ``humid_air``, ``tabulated``, ``related`` or ``constant``;
+``.at(pressure, phase)`` gives the object that answers. Backend fluids are answered from Chebyshev series that were compared with the
 backend when made, and are kept in the user's cache folder: a repeat run gets the same bits and does not
 import the backend.
 

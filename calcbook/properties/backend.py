@@ -270,13 +270,13 @@ def humid_air(pressure: float, ratio: float, temperature: float) -> dict[str, fl
     """
     volume = _humid("V", pressure, ratio, temperature)
     step = HUMID_EXPANSION_STEP
-    apart = _humid("V", pressure, ratio, temperature + step) - _humid("V", pressure, ratio, temperature - step)
+    below, above = (_humid("V", pressure, ratio, temperature + way) for way in (-step, step))
     return {
         "density": (1.0 + ratio) / volume,
         "viscosity": _humid("M", pressure, ratio, temperature),
         "conductivity": _humid("K", pressure, ratio, temperature),
         "heat capacity": _humid("C", pressure, ratio, temperature) / (1.0 + ratio),
-        "expansion coefficient": apart / (2.0 * step * volume),
+        "expansion coefficient": (above - below) / (2.0 * step * volume),
     }
 
 

@@ -1,4 +1,4 @@
-"""Humid air at a humidity ratio: its properties per mass of humid air, from the backend's humid-air equations.
+"""Humid air at a humidity ratio: its properties per mass of humid air, from the backend's equations.
 
 Source of the equations: S. Herrmann, H.-J. Kretzschmar, D.P. Gatley, Thermodynamic properties of real moist
 air, dry air, steam, water, and ice (ASHRAE RP-1485), HVAC&R Research 15 (2009) 961-986.
@@ -17,7 +17,7 @@ from calcbook.properties.backend import PROPERTIES
 from calcbook.properties.curves import Curve, Family
 from calcbook.properties.faults import PropertyFault
 from calcbook.properties.findings import Finding
-from calcbook.properties.fluid import Fluid, FluidAtPressure, Outside, Phase, _floats, _known, read_phase
+from calcbook.properties.fluid import Fluid, FluidAtPressure, Outside, Phase, _known, read_phase
 from calcbook.properties.series import Array
 from calcbook.properties.store import store
 
@@ -45,7 +45,9 @@ class HumidAir(Fluid):
     def _at(self, pressure: float | None, phase: Phase | None) -> FluidAtPressure:
         if pressure is None:
             raise PropertyFault(
-                "pressure-missing", f"{self.name} without a pressure", "the absolute pressure of the humid air"
+                "pressure-missing",
+                f"{self.name} without a pressure",
+                "the absolute pressure of the humid air",
             )
         return HumidAirAtPressure(self, pressure, phase)
 
@@ -103,7 +105,9 @@ class HumidAirAtPressure(FluidAtPressure):
         figures = {"temperature": temperature, "pressure": self.pressure}
         if not LOWEST <= temperature <= HIGHEST:
             message = f"{at} is outside the range of its equations, {LOWEST:.8g} K to {HIGHEST:.8g} K"
-            yield Finding("outside-fluid-range", "fault", message, figures | {"lowest": LOWEST, "highest": HIGHEST})
+            yield Finding(
+                "outside-fluid-range", "fault", message, figures | {"lowest": LOWEST, "highest": HIGHEST}
+            )
         if stated == "liquid":
             yield Finding("liquid-is-vapour", "fault", f"{at} is a gas, not a liquid", figures)
         dew = self.saturation_temperature()

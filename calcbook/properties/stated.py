@@ -178,7 +178,7 @@ class _RelatedExpansion:
         return -self.density.slope(at) / self.density.value(at)
 
     def slope(self, at: Array) -> Array:
-        """Central difference: a relation gives no second derivative. Curvature and rounding stay below 1e-6."""
+        """Central difference: a relation gives no second derivative. Curvature, rounding: below 1e-6."""
         return (self.value(at + EXPANSION_STEP) - self.value(at - EXPANSION_STEP)) / (2.0 * EXPANSION_STEP)
 
 

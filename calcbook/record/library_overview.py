@@ -1,7 +1,7 @@
 """The library at a glance: every situation with its methods, and their ranges drawn as bars of plain text.
 
-A bar is read off a method's own limits: those that bound a Reynolds, Rayleigh or Graetz number by figures. A bound
-that hangs on other figures (a layout, a critical number) cannot be drawn and is not guessed.
+A bar is read off a method's own limits: those that bound a Reynolds, Rayleigh or Graetz number by figures. A
+bound that hangs on other figures (a layout, a critical number) cannot be drawn and is not guessed.
 """
 
 from __future__ import annotations
@@ -9,6 +9,7 @@ from __future__ import annotations
 import math
 from collections.abc import Iterable
 from dataclasses import dataclass, replace
+from itertools import pairwise
 
 from calcbook.formulas import Compare, Node, Number, Symbol, number_text, write
 from calcbook.formulas.names import written_name
@@ -20,7 +21,7 @@ COLUMNS_OF_BAR = 32
 INSIDE, OUTSIDE = "=", "."
 # The figures that bars are drawn over, with the decades at which their axis begins and ends.
 AXES = {"Re": (0, 8), "Ra": (-2, 14), "Gz": (-1, 7)}
-# The bounds that decide: beyond a range or a stop no number stands without an answer. A caution bounds nothing.
+# The bounds that decide: beyond a range or a stop no number stands without an answer.
 DECIDING = ("range", "stop")
 
 
@@ -54,9 +55,15 @@ def axis_of(symbol: str) -> str:
 
 
 def range_of(method: Method, library: Library) -> Range | None:
-    """The first figure of Re, Ra, Gz that the method's limits bound by numbers; of a used card where it has none."""
-    for limits in (method.limits, tuple(item.limit for item in library.program(method.id).limits
-                                        if item.path and not item.counts_when and _is_direct(item.inputs))):
+    """The first of Re, Ra, Gz that the method's limits bound by numbers; a used card's where it has none."""
+    for limits in (
+        method.limits,
+        tuple(
+            item.limit
+            for item in library.program(method.id).limits
+            if item.path and not item.counts_when and _is_direct(item.inputs)
+        ),
+    ):
         found: dict[str, Range] = {}
         for limit in limits:
             for symbol, low, high in _bounds(limit):
@@ -81,10 +88,14 @@ def _bounds(limit: Limit) -> Iterable[tuple[str, float, float]]:
         return
     operands = [tree.first, *(operand for _, operand in tree.rest)]
     operators = [operator for operator, _ in tree.rest]
-    for place, (left, right) in enumerate(zip(operands, operands[1:], strict=False)):
+    for place, (left, right) in enumerate(pairwise(operands)):
         operator = operators[place]
         if isinstance(right, Symbol) and isinstance(left, Number):
-            left, right, operator = right, left, {"<=": ">=", "<": ">", ">=": "<=", ">": "<"}.get(operator, operator)
+            left, right, operator = (
+                right,
+                left,
+                {"<=": ">=", "<": ">", ">=": "<=", ">": "<"}.get(operator, operator),
+            )
         if not (_is_drawn(left) and isinstance(right, Number)):
             continue
         assert isinstance(left, Symbol)
@@ -131,7 +142,11 @@ def bars(methods: Iterable[Method], library: Library) -> list[Block]:
     width = max((len(name) for name, _ in rows), default=0)
     blocks: list[Block] = []
     for axis in AXES:
-        lines = [f"{name:<{width}} {bar(one)}  {one.words}" for name, one in rows if one is not None and one.axis == axis]
+        lines = [
+            f"{name:<{width}} {bar(one)}  {one.words}"
+            for name, one in rows
+            if one is not None and one.axis == axis
+        ]
         if lines:
             blocks.append(Code("\n".join([f"{axis:<{width}} {scale(axis)}", *lines])))
     without = [name for name, one in rows if one is None]
@@ -144,9 +159,9 @@ def bars(methods: Iterable[Method], library: Library) -> list[Block]:
 
 
 READING = (
-    "Each bar stands for the figures inside a method's range on a logarithmic axis. A sign < or > says that the range"
-    " goes on beyond the axis or has no bound there. Bars follow from the limits of the cards (levels range and stop);"
-    " the other limits of a method are on its own page."
+    "Each bar stands for the figures inside a method's range on a logarithmic axis. A sign < or > says that"
+    " the range goes on beyond the axis or has no bound there. Bars follow from the limits of the cards"
+    " (levels range and stop); the other limits of a method are on its own page."
 )
 
 
@@ -157,8 +172,10 @@ def library_overview(library: Library) -> tuple[Block, ...]:
     families = sorted({library.method(name).family for name in methods})
     blocks: list[Block] = [
         Heading(1, "Overview of the library"),
-        Paragraph(f"{len(situations)} situations, {len(methods)} methods of {len(families)} families,"
-                  f" {len(library.names('materials'))} materials."),
+        Paragraph(
+            f"{len(situations)} situations, {len(methods)} methods of {len(families)} families,"
+            f" {len(library.names('materials'))} materials."
+        ),
         Paragraph(READING),
     ]
     for name in situations:
@@ -166,9 +183,16 @@ def library_overview(library: Library) -> tuple[Block, ...]:
     placed = {method for name in situations for method in _methods_of(library.situation(name))}
     others = tuple(library.method(name) for name in methods if name not in placed)
     if others:
-        blocks += [Heading(2, "Methods outside the situations"),
-                   Paragraph("Walls, fins, radiation, and cards that stand inside others."), *_methods(others, library)]
-    return (*blocks, Heading(2, "Families"), Bullets(tuple(_family_line(family, library) for family in families)))
+        blocks += [
+            Heading(2, "Methods outside the situations"),
+            Paragraph("Walls, fins, radiation, and cards that stand inside others."),
+            *_methods(others, library),
+        ]
+    return (
+        *blocks,
+        Heading(2, "Families"),
+        Bullets(tuple(_family_line(family, library) for family in families)),
+    )
 
 
 def _family_line(family: str, library: Library) -> str:
@@ -177,7 +201,9 @@ def _family_line(family: str, library: Library) -> str:
 
 def family_methods(family: str, library: Library) -> tuple[Method, ...]:
     """The methods of a family, by id."""
-    return tuple(method for name in library.names("methods") if (method := library.method(name)).family == family)
+    return tuple(
+        method for name in library.names("methods") if (method := library.method(name)).family == family
+    )
 
 
 def family_page(family: str, library: Library) -> tuple[Block, ...] | None:
@@ -187,9 +213,14 @@ def family_page(family: str, library: Library) -> tuple[Block, ...] | None:
         return None
     places = []
     for method in methods:
-        where = [name for name in library.names("situations") if method.id in _methods_of(library.situation(name))]
-        where += [f"inside {other}" for other in library.names("methods")
-                  if any(use.method == method.id for use in library.method(other).uses)]
+        where = [
+            name for name in library.names("situations") if method.id in _methods_of(library.situation(name))
+        ]
+        where += [
+            f"inside {other}"
+            for other in library.names("methods")
+            if any(use.method == method.id for use in library.method(other).uses)
+        ]
         places.append((method.id, ", ".join(where) or "no situation"))
     return (
         Heading(1, f"Family {family}"),
@@ -217,8 +248,10 @@ def _friction_methods(friction: Friction | None) -> tuple[str, ...]:
 
 
 def _situation(situation: Situation, library: Library) -> list[Block]:
-    chosen = "; ".join(f"{write(choice.when) if choice.when is not None else 'otherwise'}: {choice.use}"
-                       for choice in situation.choose)
+    chosen = "; ".join(
+        f"{write(choice.when) if choice.when is not None else 'otherwise'}: {choice.use}"
+        for choice in situation.choose
+    )
     blocks: list[Block] = [
         Heading(2, f"{situation.id}: {situation.title}"),
         Paragraph(f"Automatic choice, groups at {situation.choose_at}: {chosen}."),
@@ -226,16 +259,29 @@ def _situation(situation: Situation, library: Library) -> list[Block]:
     ]
     friction = _friction_methods(situation.friction)
     if friction:
-        blocks += [Paragraph("Pressure drop beside the film:"),
-                   *_methods(tuple(library.method(name) for name in friction), library)]
+        blocks += [
+            Paragraph("Pressure drop beside the film:"),
+            *_methods(tuple(library.method(name) for name in friction), library),
+        ]
     return blocks
 
 
 def _methods(methods: tuple[Method, ...], library: Library) -> list[Block]:
-    rows = tuple((method.id, method.title, method.family, _accuracy(method), method.state.status,
-                  "; ".join(f"{source.cite} ({source.standing})" for source in method.sources[:1]))
-                 for method in methods)
-    return [*bars(methods, library), Table(("Method", "Title", "Family", "Accuracy", "State", "Source"), rows)]
+    rows = tuple(
+        (
+            method.id,
+            method.title,
+            method.family,
+            _accuracy(method),
+            method.state.status,
+            "; ".join(f"{source.cite} ({source.standing})" for source in method.sources[:1]),
+        )
+        for method in methods
+    )
+    return [
+        *bars(methods, library),
+        Table(("Method", "Title", "Family", "Accuracy", "State", "Source"), rows),
+    ]
 
 
 def _accuracy(method: Method) -> str:

@@ -1,4 +1,4 @@
-"""Plausible bands: the slipped decimal, the wrong unit and the swapped pair are named, and nothing is blocked."""
+"""Plausible bands: the slipped decimal, the wrong unit, the swapped pair are named; nothing is blocked."""
 
 from __future__ import annotations
 
@@ -6,7 +6,16 @@ import math
 from pathlib import Path
 
 import pytest
-from small_calculations import COOLER_GIVENS, COOLER_REST, OIL, SPHERE, STATED, chain_of, givens, insulated_pipe
+from small_calculations import (
+    COOLER_GIVENS,
+    COOLER_REST,
+    OIL,
+    SPHERE,
+    STATED,
+    chain_of,
+    givens,
+    insulated_pipe,
+)
 
 from calcbook.chain.analysis import analyse
 from calcbook.chain.outcome import CheckResult, Solved
@@ -60,7 +69,10 @@ def test_a_sound_calculation_lies_within_every_band(tmp_path: Path, body: str) -
         ({"m_hot": "182 kg/s"}, {"tube film / band / velocity of a liquid in tubes"}),
         # a wrong unit
         ({"L": "4.88 mm"}, {"geometry / band / tube length"}),
-        ({"d_i": "15.75 in", "d_o": "19.05 in"}, {"geometry / band / tube bore", "geometry / band / tube outside diameter"}),
+        (
+            {"d_i": "15.75 in", "d_o": "19.05 in"},
+            {"geometry / band / tube bore", "geometry / band / tube outside diameter"},
+        ),
         ({"m_hot": "18.2 kg/h"}, {"tube film / band / flow per tube"}),
         # a pair swapped: length and outside diameter
         (
@@ -99,7 +111,7 @@ def test_a_result_outside_its_band_is_told_where_no_input_is(tmp_path: Path) -> 
     body = body.replace("0.0002 m^2 K/W", "0.0049 m^2 K/W").replace("0.0001 m^2 K/W", "0.0049 m^2 K/W")
     found = cautions(solved_of(tmp_path, body))
     assert "oil film / band / velocity of a liquid in tubes" in found
-    assert found["oil film / band / velocity of a liquid in tubes"].value < 0.2
+    assert found["oil film / band / velocity of a liquid in tubes"].value < 0.1
 
 
 def test_a_caution_never_blocks_and_fills_nothing_in(tmp_path: Path) -> None:
@@ -142,7 +154,11 @@ def test_the_window_of_speed_belongs_to_the_tube_metal(
     tmp_path: Path, material: str, speed: str, warned: bool
 ) -> None:
     body = cooler(m_hot=speed).replace("stainless-316-kaschnitz-2017", material)
-    found = [name for name in cautions(solved_of(tmp_path, body)) if name.startswith("tube film / band / velocity in")]
+    found = [
+        name
+        for name in cautions(solved_of(tmp_path, body))
+        if name.startswith("tube film / band / velocity in")
+    ]
     assert bool(found) is warned
 
 
@@ -172,10 +188,14 @@ def test_a_metal_with_a_decimal_slipped_is_told_and_an_insulation_is_not_called_
 def test_a_service_holds_its_own_allowance_and_coefficient_against_what_is_typical(tmp_path: Path) -> None:
     stated = cooler(R_fo="0.0045 m^2 K/W")
     named = stated.replace(
-        "resistance: R_fo, on: outside}", 'resistance: R_fo, on: outside, service: "cooling tower water, treated"}'
+        "resistance: R_fo, on: outside}",
+        'resistance: R_fo, on: outside, service: "cooling tower water, treated"}',
     ).replace("{U on: outside}", "{U on: outside, service: steam condenser}")
     found = cautions(solved_of(tmp_path, named))
-    assert set(found) == {"outer deposit / typical / cooling tower water, treated", "U / typical / steam condenser"}
+    assert set(found) == {
+        "outer deposit / typical / cooling tower water, treated",
+        "U / typical / steam condenser",
+    }
     allowance = found["outer deposit / typical / cooling tower water, treated"]
     # 0.00018 to 0.00035 m2 K/W in both public tables, told beyond a factor of five
     assert allowance.limit == "3.6e−5 to 0.00175 m²·K/W" and allowance.level == "caution"
@@ -188,7 +208,9 @@ def test_a_service_holds_its_own_allowance_and_coefficient_against_what_is_typic
 
 
 def test_an_unknown_service_is_a_fault_with_the_nearest(tmp_path: Path) -> None:
-    body = cooler().replace("resistance: R_fo, on: outside}", "resistance: R_fo, on: outside, service: sea watter}")
+    body = cooler().replace(
+        "resistance: R_fo, on: outside}", "resistance: R_fo, on: outside, service: sea watter}"
+    )
     with pytest.raises(Faults) as caught:
         chain_of(tmp_path, body)
     (fault,) = caught.value.faults

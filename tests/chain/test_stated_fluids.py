@@ -44,7 +44,11 @@ def body(fluid: str, flow: str, pressure: str = "", **changes: str) -> str:
         "k_w": "16 W/(m K)",
     } | changes
     at = f", pressure: {pressure}" if pressure else ""
-    return givens(**stated) + f"streams:\n  own: {{fluid: {fluid}, temperature: T_own, flow: {flow}{at}}}\n" + TUBES
+    return (
+        givens(**stated)
+        + f"streams:\n  own: {{fluid: {fluid}, temperature: T_own, flow: {flow}{at}}}\n"
+        + TUBES
+    )
 
 
 def humid(humidity: str = "{relative humidity: phi}", **changes: str) -> str:
@@ -89,7 +93,9 @@ def test_a_humidity_ratio_is_taken_as_it_stands_and_gives_the_same(tmp_path: Pat
     by_share = solved_of(tmp_path, humid())
     wet = by_share.base.solutions[SERVICE].number("stream own/humidity ratio")
     by_ratio = solved_of(tmp_path, humid(f"{{humidity ratio: {{value: {wet!r}, source: test}}}}"))
-    assert by_ratio.base.results["U_service"].value == pytest.approx(by_share.base.results["U_service"].value, rel=1e-12)
+    assert by_ratio.base.results["U_service"].value == pytest.approx(
+        by_share.base.results["U_service"].value, rel=1e-12
+    )
 
 
 @pytest.mark.parametrize(("cold", "state"), [("20 degC", "outside"), ("55 degC", "within")])
@@ -108,7 +114,9 @@ def test_what_was_decided_for_humid_air_is_said(tmp_path: Path) -> None:
     assert "Boiling at the wall is not checked" not in page
 
 
-@pytest.mark.parametrize("text", [humid(), humid("{humidity ratio: W}", W="0.02"), oil()], ids=["share", "ratio", "oil"])
+@pytest.mark.parametrize(
+    "text", [humid(), humid("{humidity ratio: W}", W="0.02"), oil()], ids=["share", "ratio", "oil"]
+)
 def test_derivatives_are_those_of_differences(tmp_path: Path, text: str) -> None:
     chain = chain_of(tmp_path, text)
     name = chain.results["U"]
@@ -164,7 +172,9 @@ def test_heat_capacity_and_conductivity_are_those_of_the_computed_table() -> Non
         at = float(row["t_C"]) + FREEZING
         # the table is worked from the equations in US units, whose constants are rounded apart from the
         # metric ones: up to 2 parts in 10 000
-        assert float(fluid.value("heat capacity", at)) == pytest.approx(float(row["c_kJ_kgK"]) * 1e3, rel=2e-4)
+        assert float(fluid.value("heat capacity", at)) == pytest.approx(
+            float(row["c_kJ_kgK"]) * 1e3, rel=2e-4
+        )
         assert float(fluid.value("conductivity", at)) == pytest.approx(float(row["k_W_mK"]), rel=1e-4)
 
 
@@ -180,8 +190,10 @@ def test_the_density_is_the_relative_density_at_60_degrees_fahrenheit() -> None:
 def test_slopes_of_the_cards_are_those_of_their_values(name: str) -> None:
     fluid = columns(0.88, "fuel oil")
     temperatures, step = np.array([280.0, 340.0, 450.0]), 1e-3
-    difference = (fluid.value(name, temperatures + step) - fluid.value(name, temperatures - step)) / (2.0 * step)
-    # rounding 1e-16 over 2e-3 K and, for the expansion coefficient, a slope that is itself a difference over 0.1 K
+    difference = (fluid.value(name, temperatures + step) - fluid.value(name, temperatures - step)) / (
+        2.0 * step
+    )
+    # rounding 1e-16 over 2e-3 K; the slope of the expansion coefficient is itself a difference over 0.1 K
     assert fluid.slope(name, temperatures) == pytest.approx(difference, rel=1e-5)
 
 
@@ -196,9 +208,13 @@ def test_the_record_shows_the_cards_their_relations_and_their_standing(tmp_path:
     assert limit.state == "within" and limit.figure == "T = 333.15 K"
 
 
-def test_a_product_that_is_not_stated_is_an_assumption_and_a_range_outside_an_open_item(tmp_path: Path) -> None:
+def test_a_product_that_is_not_stated_is_an_assumption_and_a_range_outside_an_open_item(
+    tmp_path: Path,
+) -> None:
     solved = solved_of(tmp_path, oil(product=""))
-    assert any(item.id == "stream own/product" and "crude oil" in item.text for item in solved.base.assumptions)
+    assert any(
+        item.id == "stream own/product" and "crude oil" in item.text for item in solved.base.assumptions
+    )
     # above 400 °F the cards are outside; below the span there is no value at all
     hot = solved_of(tmp_path, oil(T_own="215 degC", T_c="210 degC"))
     assert any("petroleum-conductivity-cragoe-1929 / temperature" in item.id for item in hot.open_items)

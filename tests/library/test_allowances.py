@@ -1,4 +1,4 @@
-"""Cards of typical values and the file of plausible bands: read whole, each row with publication and standing."""
+"""Cards of typical values and the file of plausible bands: read whole, each row with its standing."""
 
 from __future__ import annotations
 
@@ -59,7 +59,7 @@ def test_the_range_of_a_service_covers_its_publications_and_has_the_weakest_stan
     river = typical(FOULING)["river water, average"]
     assert (river.low, river.high, river.standing) == (0.0002, 0.0007, "from memory")
     assert len(river.publications) == 3
-    # treated cooling-tower water: both tables say 0.001 to 0.002 h ft2 F/Btu (common practice), 0.6 % by rounding
+    # treated cooling-tower water: both tables say 0.001 to 0.002 h ft2 F/Btu (common practice), rounded
     tower = typical(FOULING)["cooling tower water, treated"]
     assert tower.low == pytest.approx(0.001 * HOUR_FOOT, rel=0.03)
     assert tower.high == pytest.approx(0.002 * HOUR_FOOT, rel=0.01)
@@ -119,7 +119,7 @@ def test_a_bad_card_is_refused_with_its_place(tmp_path: Path, old: str, new: str
 def test_a_bad_band_is_refused(tmp_path: Path) -> None:
     path = tmp_path / "bands.yaml"
     path.write_text(
-        "bands:\n  - {band: x, quantity: no such thing, place: a place, low: 1 m, high: 2 m, because: a trial,"
+        "bands:\n  - {band: x, quantity: no such, place: a place, low: 1 m, high: 2 m, because: a trial,"
         " source: common practice, standing: common practice}\n",
         encoding="utf-8",
     )
@@ -132,7 +132,10 @@ def test_a_bad_band_is_refused(tmp_path: Path) -> None:
     ("name", "lines"),
     [
         ("bands", ["tube bore", "4 to 80 mm", "velocity in admiralty tubes"]),
-        ("allowances", ["cooling tower water, treated", "0.00018 to 0.00035 m²·K/W", "factor of 5", "steam condenser"]),
+        (
+            "allowances",
+            ["cooling tower water, treated", "0.00018 to 0.00035 m²·K/W", "factor of 5", "steam condenser"],
+        ),
         ("emissivities", ["steel, oxidised", "0.04 to 0.06", "from memory"]),
     ],
 )

@@ -77,7 +77,8 @@ def test_a_bar_shows_what_the_limits_bound(method: str) -> None:
     first, last = AXES[found.axis]
     step = (last - first) / COLUMNS_OF_BAR
     marks = drawn[1:-1]
-    inside = [found.low <= 10 ** (first + step * (place + 0.5)) <= found.high for place in range(COLUMNS_OF_BAR)]
+    middles = [10 ** (first + step * (place + 0.5)) for place in range(COLUMNS_OF_BAR)]
+    inside = [found.low <= middle <= found.high for middle in middles]
     assert any(mark == INSIDE for mark in marks)
     if any(inside):
         assert [mark == INSIDE for mark in marks] == inside

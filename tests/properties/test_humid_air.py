@@ -36,10 +36,12 @@ def test_saturated_air_holds_the_water_of_the_published_table(celsius: float, ex
 
 @pytest.mark.parametrize(
     ("celsius", "expected"),
-    # ASHRAE Handbook Fundamentals 2017, chapter 1, table 3, saturation pressure of water over ice or liquid, Pa
+    # ASHRAE Handbook Fundamentals 2017, chapter 1, table 3, saturation pressure over ice or liquid, Pa
     [(-60.0, 1.08), (-20.0, 103.24), (-5.0, 401.74), (5.0, 872.6), (25.0, 3169.7), (50.0, 12351.3)],
 )
-def test_the_saturated_fraction_is_the_vapour_pressure_with_its_enhancement(celsius: float, expected: float) -> None:
+def test_the_saturated_fraction_is_the_vapour_pressure_with_its_enhancement(
+    celsius: float, expected: float
+) -> None:
     fraction = float(humid_air(None).at(ATMOSPHERE).value(SATURATION_FRACTION, celsius + FREEZING))
     # air raises the vapour pressure by 0.3 to 0.6 % at one atmosphere and up to 1.3 times that when cold (the
     # enhancement factor, 1.0039 to 1.0055 in the same chapter); 1.08 Pa has three digits
@@ -48,7 +50,7 @@ def test_the_saturated_fraction_is_the_vapour_pressure_with_its_enhancement(cels
 
 def test_the_worked_example_of_the_handbook_is_met() -> None:
     # ASHRAE Handbook Fundamentals 2017, chapter 1, example 1: 40 °C, wet bulb 20 °C, 101325 Pa. Read from the
-    # chart: W 0.0065 ± 0.0001, dew point 7 ± 0.5 °C, relative humidity 14 ± 1 %, volume 0.896 m3/kg of dry air
+    # chart: W 0.0065 ± 0.0001, dew point 7 ± 0.5 °C, relative humidity 14 ± 1 %, 0.896 m3/kg of dry air
     air = humid_air(0.0065).at(ATMOSPHERE)
     drier, wetter = (humid_air(wet).at(ATMOSPHERE).saturation_temperature() for wet in (0.0064, 0.0066))
     assert drier is not None and wetter is not None
@@ -92,8 +94,12 @@ def test_dry_humid_air_is_the_air_of_the_pure_fluid() -> None:
 
 def test_water_makes_air_lighter_and_of_greater_heat_capacity() -> None:
     temperature = 333.15
-    densities = [float(humid_air(wet).at(ATMOSPHERE).value("density", temperature)) for wet in (0.0, 0.02, 0.1)]
-    capacities = [float(humid_air(wet).at(ATMOSPHERE).value("heat capacity", temperature)) for wet in (0.0, 0.02, 0.1)]
+    densities = [
+        float(humid_air(wet).at(ATMOSPHERE).value("density", temperature)) for wet in (0.0, 0.02, 0.1)
+    ]
+    capacities = [
+        float(humid_air(wet).at(ATMOSPHERE).value("heat capacity", temperature)) for wet in (0.0, 0.02, 0.1)
+    ]
     assert densities == sorted(densities, reverse=True) and capacities == sorted(capacities)
 
 
@@ -172,7 +178,8 @@ row = [float(air.value(name, 300.0)).hex() for name in properties.PROPERTIES]
 row += [float(air.slope(name, 300.0)).hex() for name in properties.PROPERTIES]
 fraction = properties.humid_air(None).at(101325.0)
 row += [float(fraction.value(properties.SATURATION_FRACTION, 300.0)).hex()]
-row += [float(fraction.slope(properties.SATURATION_FRACTION, 300.0)).hex(), air.saturation_temperature().hex()]
+row += [float(fraction.slope(properties.SATURATION_FRACTION, 300.0)).hex()]
+row += [air.saturation_temperature().hex()]
 print(" ".join(row), "CoolProp" in sys.modules)
 """
 
@@ -180,7 +187,9 @@ print(" ".join(row), "CoolProp" in sys.modules)
 def test_a_repeat_run_gives_the_same_bits_without_the_backend(empty_cache: Path) -> None:
     environment = os.environ | {"CALCBOOK_CACHE": str(empty_cache)}
     runs = [
-        subprocess.run([sys.executable, "-c", ASKS], env=environment, capture_output=True, text=True, check=True)
+        subprocess.run(
+            [sys.executable, "-c", ASKS], env=environment, capture_output=True, text=True, check=True
+        )
         for _ in range(2)
     ]
     cold, warm = (run.stdout.split() for run in runs)

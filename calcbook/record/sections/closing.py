@@ -15,7 +15,12 @@ def references(page: Page) -> list[Block]:
 def _publications(page: Page) -> list[Block]:
     """One row per publication of each card, numbered within the card, so that no number moves."""
     rows = tuple(
-        (reference_id(card.id, place), source.cite, source.supports or "the card", _standing(page, card.id, source.standing))
+        (
+            reference_id(card.id, place),
+            source.cite,
+            source.supports or "the card",
+            _standing(page, card.id, source.standing),
+        )
         for card in page.cards()
         for place, source in enumerate(card.sources, 1)
     )

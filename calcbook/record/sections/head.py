@@ -19,7 +19,6 @@ from calcbook.record.numbers import (
 from calcbook.record.page import Page, case_name, counted
 
 
-
 def confirmation(page: Page) -> str:
     """Preliminary while any open item exists, else confirmed."""
     return "preliminary" if page.is_preliminary else "confirmed"
@@ -118,7 +117,8 @@ def _pressure_rows(page: Page) -> list[tuple[str, str, str]]:
             result = page.result(f"dp {branch.stream}_{condition}")
             if result is not None:
                 value = in_report_unit(result.value, result.kind, page.calculation.report, CONCLUSION_DIGITS)
-                rows.append((f"Pressure drop of {branch.stream}, {words}", value, f"{drop.total.method.id}, at {group.name}"))
+                basis = f"{drop.total.method.id}, at {group.name}"
+                rows.append((f"Pressure drop of {branch.stream}, {words}", value, basis))
     return rows
 
 

@@ -14,7 +14,15 @@ from calcbook.formulas import write
 from calcbook.formulas.names import written_name
 from calcbook.library.cards import Assignment
 from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Table
-from calcbook.record.numbers import AS_GIVEN_DIGITS, NOT_USED, celsius, number, unit_text, value_text, with_unit
+from calcbook.record.numbers import (
+    AS_GIVEN_DIGITS,
+    NOT_USED,
+    celsius,
+    number,
+    unit_text,
+    value_text,
+    with_unit,
+)
 from calcbook.record.page import Page
 from calcbook.record.steps import pressure_words
 

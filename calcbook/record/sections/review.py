@@ -367,8 +367,8 @@ def _trial(page: Page) -> list[str]:
 
 def _house(page: Page) -> list[str]:
     return [
-        f"The card {card.id} is a {HOUSE_METHOD}: it rests on the plant's own data and holds for the equipment that they"
-        " were taken on; no publication bears it out."
+        f"The card {card.id} is a {HOUSE_METHOD}: it rests on the plant's own data and holds for the equipment"
+        " that they were taken on; no publication bears it out."
         for card in page.cards()
         if getattr(card, "house", False)
     ]

@@ -71,14 +71,18 @@ def _rows(page: Page) -> list[tuple[str, ...]]:
         cells = []
         for condition in reversed(CONDITIONS):
             there = found.get(condition)
-            cells += [there.figure, verdict(there, page.is_house(there.card))] if there is not None else [NOT_USED, NOT_USED]
+            cells += (
+                [there.figure, verdict(there, page.is_house(there.card))]
+                if there is not None
+                else [NOT_USED, NOT_USED]
+            )
         limits = dict.fromkeys(check.limit for check in found.values())
         rows.append((name, "; ".join(limits), *cells, one.level, one.because, _source(one, page)))
     return rows
 
 
 def verdict(check: CheckResult, house: bool = False) -> str:
-    """The state of a check in words that do not say more than the standing of its limit, or that it is a book's own."""
+    """The state of a check in words that do not say more than the standing of its limit."""
     if house and check.state in ("within", "outside"):
         return f"{check.state} ({HOUSE_METHOD})"
     if check.state == "within":
