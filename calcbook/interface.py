@@ -84,8 +84,17 @@ def links_of(path: Path, settings: Settings, above: tuple[Path, ...] = ()) -> Li
     def solve_source(source: Path) -> Source:
         if source.resolve() in here:
             names = " takes from ".join(item.stem for item in (*here, source))
-            raise Faults([Fault("link-circular", Place(path.name), "calculations take from each other in a circle",
-                                names, "links that end at a calculation without links")])
+            raise Faults(
+                [
+                    Fault(
+                        "link-circular",
+                        Place(path.name),
+                        "calculations take from each other in a circle",
+                        names,
+                        "links that end at a calculation without links",
+                    )
+                ]
+            )
         return source_of(solve_file(source, source.name, here))
 
     return Links(path.parent, output_of(path, settings), solve_source)
@@ -104,7 +113,9 @@ def source_of(solved: Solved) -> Source:
     from calcbook.record import digest_of
 
     results = {name: (result.value, result.kind.unit) for name, result in solved.base.results.items()}
-    return Source(solved.chain.calculation.revision, digest_of(solved).results, results, len(solved.open_items))
+    return Source(
+        solved.chain.calculation.revision, digest_of(solved).results, results, len(solved.open_items)
+    )
 
 
 def _solved(calculation: Calculation, library: Library, collector: Collector) -> Solved | None:

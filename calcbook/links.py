@@ -52,8 +52,14 @@ class Links:
             return self._pinned(text, file)
         if file is None:
             known = sorted(self._numbers())
-            raise _fault("link-source-unknown", text, f"there is no calculation {text.calculation} in this folder",
-                         text.calculation, ", ".join(known), nearest_names(text.calculation, known))
+            raise _fault(
+                "link-source-unknown",
+                text,
+                f"there is no calculation {text.calculation} in this folder",
+                text.calculation,
+                ", ".join(known),
+                nearest_names(text.calculation, known),
+            )
         source = self.solve(file)
         value, unit = self._result(text, source.results)
         state = "void" if _is_void(file) else "not pinned to an issued revision"
@@ -68,10 +74,18 @@ class Links:
             results = json.loads((folder / "results.json").read_text(encoding="utf-8"))["results"]
             kind, digest = str(seal["kind"]), str(seal["digest"]["results"])
         except (OSError, ValueError, KeyError, TypeError):
-            raise _fault("link-revision-unknown", text, f"{text.calculation} has no issued revision {text.revision}",
-                         text.revision, ", ".join(self._issued(text.calculation)) or "an issued revision") from None
-        table = {name: (item["value"], item["unit"]) for name, item in results.items()
-                 if isinstance(item, dict) and isinstance(item.get("value"), int | float) and item.get("unit")}
+            raise _fault(
+                "link-revision-unknown",
+                text,
+                f"{text.calculation} has no issued revision {text.revision}",
+                text.revision,
+                ", ".join(self._issued(text.calculation)) or "an issued revision",
+            ) from None
+        table = {
+            name: (item["value"], item["unit"])
+            for name, item in results.items()
+            if isinstance(item, dict) and isinstance(item.get("value"), int | float) and item.get("unit")
+        }
         value, unit = self._result(text, table)
         state = CURRENT
         if file is not None and _is_void(file):
@@ -84,15 +98,23 @@ class Links:
 
     def _result(self, text: LinkText, results: Mapping[str, tuple[float, str]]) -> tuple[float, str]:
         if text.result not in results:
-            raise _fault("link-result-unknown", text, f"{text.calculation} has no result `{text.result}`", text.result,
-                         ", ".join(results), nearest_names(text.result, results))
+            raise _fault(
+                "link-result-unknown",
+                text,
+                f"{text.calculation} has no result `{text.result}`",
+                text.result,
+                ", ".join(results),
+                nearest_names(text.result, results),
+            )
         return results[text.result]
 
     def _superseding(self, number: str, revision: str) -> str:
         """The issued revision that supersedes one, if there is any."""
         for other in self._issued(number):
             try:
-                seal = json.loads((self.output / number / ISSUED / other / "seal.json").read_text(encoding="utf-8"))
+                seal = json.loads(
+                    (self.output / number / ISSUED / other / "seal.json").read_text(encoding="utf-8")
+                )
             except (OSError, ValueError):
                 continue
             if seal.get("supersedes") == revision:
@@ -108,7 +130,7 @@ class Links:
 
     def _numbers(self) -> dict[str, Path]:
         """The calculation files of the folder by their number, from their first lines."""
-        numbers = {}
+        numbers: dict[str, Path] = {}
         for path in sorted(self.folder.glob("*.yaml")):
             try:
                 found = NUMBER_LINE.search(path.read_text(encoding="utf-8")[:4000])
@@ -137,5 +159,7 @@ def _is_void(file: Path) -> bool:
     return isinstance(root, MappingNode) and root.get("void") is not None
 
 
-def _fault(code: str, text: LinkText, message: str, found: str, expected: str, nearest: tuple[str, ...] = ()) -> Faults:
+def _fault(
+    code: str, text: LinkText, message: str, found: str, expected: str, nearest: tuple[str, ...] = ()
+) -> Faults:
     return Faults([Fault(code, text.place, message, found, expected, nearest)])

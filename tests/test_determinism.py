@@ -11,12 +11,20 @@ ROOT = Path(__file__).resolve().parents[1]
 
 
 def run_book(output: Path, cwd: Path, cache: Path, **environment: str) -> dict[str, bytes]:
-    kept = {name: value for name, value in os.environ.items() if name in ("PATH", "HOME", "SYSTEMROOT", "PYTHONPATH")}
+    kept = {
+        name: value
+        for name, value in os.environ.items()
+        if name in ("PATH", "HOME", "SYSTEMROOT", "PYTHONPATH")
+    }
     path = os.pathsep.join(filter(None, [str(ROOT), kept.get("PYTHONPATH", "")]))
     done = subprocess.run(
         [sys.executable, "-m", "calcbook", "run", str(ROOT / "calcs"), "--output", str(output)],
-        cwd=cwd, env={**kept, "PYTHONPATH": path, "CALCBOOK_CACHE": str(cache), **environment},
-        capture_output=True, text=True, encoding="utf-8", check=False,
+        cwd=cwd,
+        env={**kept, "PYTHONPATH": path, "CALCBOOK_CACHE": str(cache), **environment},
+        capture_output=True,
+        text=True,
+        encoding="utf-8",
+        check=False,
     )
     assert done.returncode == 0, done.stderr
     files = sorted(path for path in output.rglob("*") if path.is_file())
@@ -28,8 +36,15 @@ def test_two_runs_of_the_example_book_give_the_same_bytes(tmp_path: Path) -> Non
     elsewhere.mkdir()
     cache = tmp_path / "cache"
     cold = run_book(tmp_path / "one", tmp_path, cache, PYTHONHASHSEED="0", TZ="UTC", LANG="C", LC_ALL="C")
-    warm = run_book(tmp_path / "two", elsewhere, cache, PYTHONHASHSEED="4711", TZ="Asia/Tokyo", LANG="de_DE.UTF-8",
-                    COLUMNS="40")
+    warm = run_book(
+        tmp_path / "two",
+        elsewhere,
+        cache,
+        PYTHONHASHSEED="4711",
+        TZ="Asia/Tokyo",
+        LANG="de_DE.UTF-8",
+        COLUMNS="40",
+    )
     assert len(cold) >= 12
     assert cold == warm
 

@@ -8,9 +8,9 @@ from pathlib import Path
 
 import pytest
 
+from calcbook import read, record_text, solve
 from calcbook.commands import COMMANDS
 from calcbook.faults import Faults
-from calcbook import read, record_text, solve
 from calcbook.library import vocabulary
 from calcbook.quantities import QuantityFault, read_quantity, read_tolerance
 

@@ -45,17 +45,31 @@ def audit(entries: Sequence[Entry], errata: Sequence[Erratum] | None = None) -> 
         if entry.number:
             first = numbers.setdefault(entry.number.casefold(), entry.found.name)
             if first != entry.found.name:
-                findings.append(AuditFinding("number taken", entry.found.name, 0,
-                                             f"the number {entry.number} stands in {first} too", "give one another number"))
+                findings.append(
+                    AuditFinding(
+                        "number taken",
+                        entry.found.name,
+                        0,
+                        f"the number {entry.number} stands in {first} too",
+                        "give one another number",
+                    )
+                )
     return findings
 
 
 def _of_entry(entry: Entry, errata: Sequence[Erratum]) -> Iterator[AuditFinding]:
     for fault in entry.faults:
-        yield AuditFinding(f"fault {fault.code}", fault.place.file, fault.place.line, fault.message,
-                           fault.expected or "mend the file")
+        yield AuditFinding(
+            f"fault {fault.code}",
+            fault.place.file,
+            fault.place.line,
+            fault.message,
+            fault.expected or "mend the file",
+        )
     if entry.not_converged:
-        yield AuditFinding("not converged", entry.found.name, 0, entry.not_converged, "change the givens or the method")
+        yield AuditFinding(
+            "not converged", entry.found.name, 0, entry.not_converged, "change the givens or the method"
+        )
     if entry.lifecycle is None:
         return
     yield from _stored(entry)
@@ -64,24 +78,42 @@ def _of_entry(entry: Entry, errata: Sequence[Erratum]) -> Iterator[AuditFinding]
     yield from _links(entry)
     if entry.policy == REFUSE_ANY and entry.lifecycle.open_items:
         count = len(entry.lifecycle.open_items)
-        yield AuditFinding("open items", entry.found.name, 0, f"{count} open; the book refuses any issue with open items",
-                           "close or accept each, see section 2 of the record")
+        yield AuditFinding(
+            "open items",
+            entry.found.name,
+            0,
+            f"{count} open; the book refuses any issue with open items",
+            "close or accept each, see section 2 of the record",
+        )
 
 
 def _stored(entry: Entry) -> Iterator[AuditFinding]:
     folder = entry.found.output / entry.number
-    for name, now, difference in ((RECORD, entry.record, record_difference), (RESULTS, entry.results, results_difference)):
+    for name, now, difference in (
+        (RECORD, entry.record, record_difference),
+        (RESULTS, entry.results, results_difference),
+    ):
         path = folder / name
         try:
             stored = path.read_bytes().decode("utf-8")
         except (OSError, UnicodeDecodeError):
-            yield AuditFinding("record missing", path.as_posix(), 0, f"{name} of {entry.number} is not there",
-                               f"run {entry.found.name} and commit its record")
+            yield AuditFinding(
+                "record missing",
+                path.as_posix(),
+                0,
+                f"{name} of {entry.number} is not there",
+                f"run {entry.found.name} and commit its record",
+            )
             continue
         differs = difference(stored, now)
         if differs:
-            yield AuditFinding("record not current", path.as_posix(), 0, differs,
-                               f"run {entry.found.name}, read what changed, and commit the record")
+            yield AuditFinding(
+                "record not current",
+                path.as_posix(),
+                0,
+                differs,
+                f"run {entry.found.name}, read what changed, and commit the record",
+            )
 
 
 def _signoffs(entry: Entry) -> Iterator[AuditFinding]:
@@ -89,18 +121,30 @@ def _signoffs(entry: Entry) -> Iterator[AuditFinding]:
     file = signoffs_path(entry.found.path).as_posix()
     for item in entry.lifecycle.signoffs:
         if item.validity == "void":
-            yield AuditFinding("sign-off void", file, 0, f"{item.role}: {'; '.join(item.why)}",
-                               "have the role sign the content as it is now")
+            yield AuditFinding(
+                "sign-off void",
+                file,
+                0,
+                f"{item.role}: {'; '.join(item.why)}",
+                "have the role sign the content as it is now",
+            )
         elif item.signoff is not None and lies_ahead(item.signoff.date):
-            yield AuditFinding("date in the future", file, 0, f"{item.role} is dated {item.signoff.date}",
-                               "have the role sign with the date of the day")
+            yield AuditFinding(
+                "date in the future",
+                file,
+                0,
+                f"{item.role} is dated {item.signoff.date}",
+                "have the role sign with the date of the day",
+            )
 
 
 def _issued(entry: Entry, errata: Sequence[Erratum]) -> Iterator[AuditFinding]:
     assert entry.lifecycle is not None
     for revision, finding in check_seals(entry.found.output, entry.number):
         file = (entry.found.output / entry.number / "issued" / revision / finding.file).as_posix()
-        yield AuditFinding("issued copy altered", file, 0, finding.text, "restore it from the commit of its issue")
+        yield AuditFinding(
+            "issued copy altered", file, 0, finding.text, "restore it from the commit of its issue"
+        )
     if errata:
         for copy in entry.lifecycle.issued:
             yield from _touched(copy, entry.found.output, errata)
@@ -112,22 +156,32 @@ def _touched(copy: Issued, output: Path, errata: Sequence[Erratum]) -> Iterator[
     if not suspects:
         return
     try:
-        cards = {name.partition(" ")[2] for name in load_issued(copy.number, copy.revision, output).solved.cards}
+        cards = {
+            name.partition(" ")[2] for name in load_issued(copy.number, copy.revision, output).solved.cards
+        }
     except (Faults, NotConverged):
         cards = {erratum.card for erratum in suspects}
     for erratum in suspects:
         if erratum.card in cards:
-            yield AuditFinding("erratum", copy.folder.as_posix(), 0,
-                               f"revision {copy.revision} used {erratum.card} in version {version}: {erratum.wrong}",
-                               f"recalculate with version {erratum.mended_in} or later and issue the next revision")
+            yield AuditFinding(
+                "erratum",
+                copy.folder.as_posix(),
+                0,
+                f"revision {copy.revision} used {erratum.card} in version {version}: {erratum.wrong}",
+                f"recalculate with version {erratum.mended_in} or later and issue the next revision",
+            )
 
 
 def _links(entry: Entry) -> Iterator[AuditFinding]:
     for link in entry.links:
         if link.state != "current":
-            yield AuditFinding("link", entry.found.name, 0,
-                               f"{link.symbol} takes {link.result} from {link.calculation}: {link.state}",
-                               "look at the source, then pin the revision and digest that are meant")
+            yield AuditFinding(
+                "link",
+                entry.found.name,
+                0,
+                f"{link.symbol} takes {link.result} from {link.calculation}: {link.state}",
+                "look at the source, then pin the revision and digest that are meant",
+            )
 
 
 def audit_blocks(name: str, entries: Sequence[Entry], findings: Sequence[AuditFinding]) -> tuple[Block, ...]:
@@ -136,6 +190,13 @@ def audit_blocks(name: str, entries: Sequence[Entry], findings: Sequence[AuditFi
     words = f"{len(entries)} calculation(s) looked into, {len(findings)} finding(s)."
     if not findings:
         return head, Paragraph(words)
-    rows = tuple((finding.kind, f"{finding.file}:{finding.line}" if finding.line else finding.file, finding.text,
-                  finding.action) for finding in findings)
+    rows = tuple(
+        (
+            finding.kind,
+            f"{finding.file}:{finding.line}" if finding.line else finding.file,
+            finding.text,
+            finding.action,
+        )
+        for finding in findings
+    )
     return head, Paragraph(words), Table(("Finding", "Where", "What", "What to do"), rows)

@@ -63,8 +63,11 @@ def read_entry(found: Found) -> Entry:
     digest = digest_of(solved)
     software = software_of(digest)
     life = life_from(lifecycle, calculation.settings, changes)
-    links = tuple(Link(given.symbol, given.link.calculation, given.link.result, given.link.state)
-                  for given in calculation.givens.values() if given.link is not None)
+    links = tuple(
+        Link(given.symbol, given.link.calculation, given.link.result, given.link.state)
+        for given in calculation.givens.values()
+        if given.link is not None
+    )
     return Entry(
         found,
         calculation.number,

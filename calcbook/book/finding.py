@@ -34,8 +34,12 @@ def find_calculations(paths: Iterable[Path], output: Path | None, collector: Col
     for path in paths:
         files = sorted(_of_folder(path)) if path.is_dir() else [path]
         if path.is_dir() and not files:
-            collector.add("file-not-found", Place(path.as_posix()), "the folder holds no calculation file",
-                          expected="*.yaml files")
+            collector.add(
+                "file-not-found",
+                Place(path.as_posix()),
+                "the folder holds no calculation file",
+                expected="*.yaml files",
+            )
         for file in files:
             key = file.resolve()
             found.setdefault(key, Found(file, file.as_posix(), _output(file, output)))
@@ -43,8 +47,11 @@ def find_calculations(paths: Iterable[Path], output: Path | None, collector: Col
 
 
 def _of_folder(folder: Path) -> list[Path]:
-    return [path for path in folder.glob("*.yaml")
-            if path.name != BOOK_FILE and not path.name.endswith(BESIDE) and path.is_file()]
+    return [
+        path
+        for path in folder.glob("*.yaml")
+        if path.name != BOOK_FILE and not path.name.endswith(BESIDE) and path.is_file()
+    ]
 
 
 def _output(file: Path, output: Path | None) -> Path:

@@ -7,8 +7,19 @@ from collections.abc import Sequence
 from calcbook.book.entries import Entry
 from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Table
 
-COLUMNS = ("Number", "Title", "Revision", "State", "Confirmation", "U in service", "On", "Open items", "Takes from",
-           "Feeds", "Last issued")
+COLUMNS = (
+    "Number",
+    "Title",
+    "Revision",
+    "State",
+    "Confirmation",
+    "U in service",
+    "On",
+    "Open items",
+    "Takes from",
+    "Feeds",
+    "Last issued",
+)
 NONE = "none"
 
 
@@ -18,8 +29,11 @@ def register_data(entries: Sequence[Entry]) -> list[dict[str, object]]:
     for entry in entries:
         for link in entry.links:
             feeds.setdefault(link.calculation.casefold(), []).append(f"{entry.number} ({link.symbol})")
-    return [_row(entry, feeds) for entry in sorted(entries, key=lambda entry: (entry.number.casefold(), entry.found.name))
-            if entry.lifecycle is not None]
+    return [
+        _row(entry, feeds)
+        for entry in sorted(entries, key=lambda entry: (entry.number.casefold(), entry.found.name))
+        if entry.lifecycle is not None
+    ]
 
 
 def _row(entry: Entry, feeds: dict[str, list[str]]) -> dict[str, object]:
@@ -49,7 +63,11 @@ def register_blocks(name: str, entries: Sequence[Entry]) -> tuple[Block, ...]:
         Heading(1, f"Register{f' of {name}' if name else ''}"),
         Paragraph("Status is derived from the files, sign-offs and issued copies; nothing here is typed."),
         Table(COLUMNS, rows) if rows else Paragraph("No calculation can be read."),
-        *((Heading(2, "Files without an entry"), Bullets(tuple(_failure(entry) for entry in failed))) if failed else ()),
+        *(
+            (Heading(2, "Files without an entry"), Bullets(tuple(_failure(entry) for entry in failed)))
+            if failed
+            else ()
+        ),
     )
 
 

@@ -92,8 +92,8 @@ def texts_of(found: Found, solved: Solved) -> Texts:
 
     Raises ``Faults`` when the sign-offs beside the file or an issued copy cannot be read.
     """
-    from calcbook.revisions.lifecycle import life_of
     from calcbook.record import digest_of, markdown, record_blocks, results_text, software_of
+    from calcbook.revisions.lifecycle import life_of
 
     digest = digest_of(solved)
     software = software_of(digest)
@@ -125,15 +125,25 @@ def _written(texts: Texts, taken: dict[str, str]) -> Outcome:
     first = taken.setdefault(number.casefold(), texts.found.name)
     place = Place(texts.found.name)
     if first != texts.found.name:
-        fault = Fault("number-in-two-files", place, f"the number {number} stands in two files", found=first,
-                      expected="each number once in a book")
+        fault = Fault(
+            "number-in-two-files",
+            place,
+            f"the number {number} stands in two files",
+            found=first,
+            expected="each number once in a book",
+        )
         return Outcome(texts.found.name, faults=(fault,))
     folder = texts.found.output / number
     try:
         write_whole(folder / RECORD, texts.record)
         write_whole(folder / RESULTS, texts.results)
     except OSError as error:
-        fault = Fault("output-not-writable", place, f"the record of {number} cannot be written",
-                      found=error.strerror or "", expected="a folder that can be written")
+        fault = Fault(
+            "output-not-writable",
+            place,
+            f"the record of {number} cannot be written",
+            found=error.strerror or "",
+            expected="a folder that can be written",
+        )
         return Outcome(texts.found.name, faults=(fault,))
     return texts.outcome

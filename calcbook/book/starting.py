@@ -57,8 +57,11 @@ SHELL = ("D_shell", "0.5 m", "inside diameter of the shell")
 FIN_FIGURES = ("fin height", "fin thickness", "fin pitch")
 FINS = """
      fins: {shape: annular, height: L_f, thickness: t_f, pitch: p_f, conductivity: {value: 200 W/(m K), source: tbd}}"""
-DIMENSIONS = {"tube": ("inside diameter", "outside diameter", "length"), "sphere": ("inside diameter", "outside diameter"),
-              "plane": ("height", "width")}
+DIMENSIONS = {
+    "tube": ("inside diameter", "outside diameter", "length"),
+    "sphere": ("inside diameter", "outside diameter"),
+    "plane": ("height", "width"),
+}
 
 
 def starting_file(library: Library, name: str, shape: str | None = None) -> str:
@@ -71,14 +74,19 @@ def starting_file(library: Library, name: str, shape: str | None = None) -> str:
     if shape not in situation.shapes:
         raise ValueError(f"{name} fits {' or '.join(situation.shapes)}, not {shape}")
     side = situation.surfaces[0]
-    return "\n".join([
-        *_head(situation),
-        *_givens(situation, shape),
-        *_stream(situation, _is_saturated(library, situation)),
-        *_geometry(situation, shape),
-        *_resistances(situation, side, shape),
-        *_tail(),
-    ]) + "\n"
+    return (
+        "\n".join(
+            [
+                *_head(situation),
+                *_givens(situation, shape),
+                *_stream(situation, _is_saturated(library, situation)),
+                *_geometry(situation, shape),
+                *_resistances(situation, side, shape),
+                *_tail(),
+            ]
+        )
+        + "\n"
+    )
 
 
 def _head(situation: Situation) -> list[str]:
@@ -109,7 +117,9 @@ def _wanted(situation: Situation, shape: str) -> list[str]:
 
 def _start(need_name: str, situation: Situation) -> tuple[str, str, str]:
     """Symbol, value and meaning to start from."""
-    if need_name == "shell inside diameter" and any(need.quantity.name == "baffles" for need in situation.needs):
+    if need_name == "shell inside diameter" and any(
+        need.quantity.name == "baffles" for need in situation.needs
+    ):
         return SHELL
     return START[need_name]
 
@@ -119,7 +129,9 @@ def _is_saturated(library: Library, situation: Situation) -> bool:
     if "boiling" in situation.id:
         return True
     needs = [need for method in situation.methods for need in library.method(method).needs]
-    return any(need.place.startswith("saturated") or need.quantity.name == "saturation temperature" for need in needs)
+    return any(
+        need.place.startswith("saturated") or need.quantity.name == "saturation temperature" for need in needs
+    )
 
 
 def _givens(situation: Situation, shape: str) -> list[str]:
@@ -129,7 +141,9 @@ def _givens(situation: Situation, shape: str) -> list[str]:
             continue
         symbol, value, meaning = _start(name, situation)
         lines.append(f"  {symbol}: {{value: {value}, is: {meaning}, source: tbd}}")
-    flow = "3 m/s, is: speed of the stream" if situation.flow_area is None else "10 kg/s, is: flow of the stream"
+    flow = (
+        "3 m/s, is: speed of the stream" if situation.flow_area is None else "10 kg/s, is: flow of the stream"
+    )
     if _asks_for_flow(situation):
         lines.append(f"  flow: {{value: {flow}, source: tbd, tolerance: 2 %}}")
     lines += [
@@ -155,16 +169,35 @@ def _stream(situation: Situation, saturated: bool) -> list[str]:
     if saturated:
         boiling = "boiling" in situation.id
         phase, pressure = ("liquid", "0.1 bara") if boiling else ("gas", "1.2 bara")
-        return ["streams:", "  main:", "    fluid: water                    # `calcbook library fluids` lists them",
-                f"    phase: {phase}", "    temperature: saturation         # that of its pressure",
-                f"    pressure: {{value: {pressure}, source: tbd}}",
-                *(["    flow: flow"] if _asks_for_flow(situation) else []), ""]
-    fluid = "air" if situation.flow != "forced" or _has_fins(situation) or (situation.flow_area is None and _asks_for_flow(situation)) else "water"
+        return [
+            "streams:",
+            "  main:",
+            "    fluid: water                    # `calcbook library fluids` lists them",
+            f"    phase: {phase}",
+            "    temperature: saturation         # that of its pressure",
+            f"    pressure: {{value: {pressure}, source: tbd}}",
+            *(["    flow: flow"] if _asks_for_flow(situation) else []),
+            "",
+        ]
+    fluid = (
+        "air"
+        if situation.flow != "forced"
+        or _has_fins(situation)
+        or (situation.flow_area is None and _asks_for_flow(situation))
+        else "water"
+    )
     pressure = "4 bara" if fluid == "water" else "1.013 bara"
-    lines = ["streams:", "  main:", f"    fluid: {fluid}                    # `calcbook library fluids` lists them",
-             "    temperature: T_1", f"    pressure: {{value: {pressure}, source: tbd}}"]
+    lines = [
+        "streams:",
+        "  main:",
+        f"    fluid: {fluid}                    # `calcbook library fluids` lists them",
+        "    temperature: T_1",
+        f"    pressure: {{value: {pressure}, source: tbd}}",
+    ]
     if _asks_for_flow(situation):
-        lines.append("    flow: flow                      # mass flow, volume flow or speed, told apart by its unit")
+        lines.append(
+            "    flow: flow                      # mass flow, volume flow or speed, told apart by its unit"
+        )
     return [*lines, ""]
 
 
@@ -177,7 +210,9 @@ def _geometry(situation: Situation, shape: str) -> list[str]:
 
 
 def _resistances(situation: Situation, side: str, shape: str) -> list[str]:
-    film = f"  - {{name: main film, kind: film, stream: main, situation: {situation.id}{_with(situation, shape)}"
+    film = (
+        f"  - {{name: main film, kind: film, stream: main, situation: {situation.id}{_with(situation, shape)}"
+    )
     film += ("," + FINS if _has_fins(situation) else "") + "}"
     other = "outside" if side == "inside" else "inside"
     deposit = f"  - {{name: deposit, kind: fouling, resistance: R_f, on: {'total finned' if _has_fins(situation) else side}}}"
@@ -195,9 +230,15 @@ def _has_fins(situation: Situation) -> bool:
 
 def _with(situation: Situation, shape: str) -> str:
     """The `with:` of a film: what the situation needs and the geometry does not give."""
-    given = (*DIMENSIONS[shape], "tubes in parallel", *FIN_FIGURES, *(("area", "perimeter") if shape == "plane" else ()))
-    entries = [_entry(need, situation) for need in situation.needs
-               if need.quantity.name not in given or need.one_of]
+    given = (
+        *DIMENSIONS[shape],
+        "tubes in parallel",
+        *FIN_FIGURES,
+        *(("area", "perimeter") if shape == "plane" else ()),
+    )
+    entries = [
+        _entry(need, situation) for need in situation.needs if need.quantity.name not in given or need.one_of
+    ]
     entries = [entry for entry in entries if entry]
     return f", with: {{{', '.join(entries)}}}" if entries else ""
 

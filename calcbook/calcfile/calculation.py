@@ -98,8 +98,8 @@ class FluidText:
     """A fluid as the file names it.
 
     ``kind``: name, mixture, humid air, petroleum, table or constants. ``fraction`` is the figure that tells
-    one mixture from another: a fraction, the humidity by its ``basis``, or the relative density. ``columns`` holds the entries of a table or constants by
-    property name; ``astm`` the two points of a D341 viscosity as (temperature, kinematic viscosity).
+    one mixture from another: a fraction, the humidity by its ``basis``, or the relative density.
+    ``columns`` holds the entries of a table or constants by property name; ``astm`` the two points of a D341 viscosity as (temperature, kinematic viscosity).
     """
 
     kind: str
@@ -274,4 +274,5 @@ class Calculation:
     def places(self) -> tuple[str, ...]:
         """The cases that are places along the unit."""
         return tuple(name for name in self.cases if name.startswith("at "))
+
     broken: frozenset[str] = frozenset()

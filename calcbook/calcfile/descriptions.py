@@ -281,7 +281,9 @@ TERM = Description(
         Key("growth", "fouling growth", "node", later=True),
         Key("fouling specified as", "fouling of the whole unit", "node", later=True),
         Key("fins", "fins on the surface that the film acts on", "mapping", of=FINS),
-        Key("vapour velocity", "speed of a condensing vapour", "node", of=SOURCED, quantity="vapour velocity"),
+        Key(
+            "vapour velocity", "speed of a condensing vapour", "node", of=SOURCED, quantity="vapour velocity"
+        ),
     ),
 )
 # Which keys a term of each kind may have: a key that would have no effect is a fault.

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 import math
 from collections.abc import Mapping
 from dataclasses import replace
@@ -52,10 +53,12 @@ from calcbook.chain.types import (
     Branch,
     Candidate,
     Chain,
+    ChainCheck,
     ChainStep,
     Group,
     Layer,
     OpenItem,
+    StreamState,
     follows_temperature,
 )
 from calcbook.faults import Collector, nearest_names, shown
@@ -113,8 +116,14 @@ class _Analysis:
         if self.chain.calculation.places:
             cases[0] = _with_mean(cases, self.chain.calculation.places)
         cross = self._cross(cases[0])
-        return Solved(self.chain, tuple(cases), cross, self._sensitivity(cases[0]), self.used_cards,
-                      _governing(cases, self.chain.calculation.places))
+        return Solved(
+            self.chain,
+            tuple(cases),
+            cross,
+            self._sensitivity(cases[0]),
+            self.used_cards,
+            _governing(cases, self.chain.calculation.places),
+        )
 
     # -- one case -----------------------------------------------------------------------------------
 
@@ -122,7 +131,9 @@ class _Analysis:
         inputs = self.chain.case_inputs(name)
         solutions = {condition: solve(self.chain, inputs, condition) for condition in CONDITIONS}
         for condition, solution in solutions.items():
-            if not bool(np.all(solution.converged)) or not np.isfinite(solution.number(self.chain.results["U"])):
+            if not bool(np.all(solution.converged)) or not np.isfinite(
+                solution.number(self.chain.results["U"])
+            ):
                 self._stop_if_limit(name, solution)
                 self._explain(name, solution)
                 if self.collector:
@@ -149,8 +160,12 @@ class _Analysis:
             checks=checks,
             criteria=criteria,
             assumptions=assumptions_of(self.chain, solutions),
-            open_items=(*self.chain.open_items, *state_items, *jump_items(self.chain, name, solutions),
-                        *root_items(self.chain, name, inputs, solutions)),
+            open_items=(
+                *self.chain.open_items,
+                *state_items,
+                *jump_items(self.chain, name, solutions),
+                *root_items(self.chain, name, inputs, solutions),
+            ),
             closure=self._closure(solutions),
             controlling=controlling,
             controlling_share=share,
@@ -178,17 +193,25 @@ class _Analysis:
                     if not np.isfinite(value).all():
                         where = f"case {name}: " if name else ""
                         bulk = celsius(solution.number(other.bulk))
-                        self.collector.add("outside-fluid-range", self.chain.streams[branch.stream].place,
-                                           f"{where}the surface of {branch.name} may come as near to the other side as"
-                                           f" {bulk}, where {branch.stream} has no {operation.property}",
-                                           expected="a fluid or table that reaches the other side's temperature")
+                        self.collector.add(
+                            "outside-fluid-range",
+                            self.chain.streams[branch.stream].place,
+                            f"{where}the surface of {branch.name} may come as near to the other side as"
+                            f" {bulk}, where {branch.stream} has no {operation.property_name}",
+                            expected="a fluid or table that reaches the other side's temperature",
+                        )
                         return
 
     def _report_stop(self, check: CheckResult) -> None:
         term = next((term for term in self.chain.calculation.resistances if term.name == check.owner), None)
         place = term.place if term is not None else self.chain.calculation.place
-        self.collector.add("limit-stops", place, f"{check.id}: no number is given outside this limit",
-                           found=check.figure, expected=f"{check.limit} ({check.because})")
+        self.collector.add(
+            "limit-stops",
+            place,
+            f"{check.id}: no number is given outside this limit",
+            found=check.figure,
+            expected=f"{check.limit} ({check.because})",
+        )
 
     # -- results ------------------------------------------------------------------------------------
 
@@ -201,40 +224,79 @@ class _Analysis:
                 results[name] = Result(name, value, kinds[kind], title)
 
         table = self.chain.results
-        for condition, solution in reversed(solutions.items()):
-            put(f"U_{condition}", solution.number(table["U"]), "overall coefficient", f"overall coefficient, {condition}")
+        for condition, solution in reversed(list(solutions.items())):
+            put(
+                f"U_{condition}",
+                solution.number(table["U"]),
+                "overall coefficient",
+                f"overall coefficient, {condition}",
+            )
             for surface in self.chain.surfaces:
-                put(f"U_{condition} on {surface.name}", solution.number(table[f"U on {surface.name}"]),
-                    "overall coefficient", f"overall coefficient on {surface.name}, {condition}")
+                put(
+                    f"U_{condition} on {surface.name}",
+                    solution.number(table[f"U on {surface.name}"]),
+                    "overall coefficient",
+                    f"overall coefficient on {surface.name}, {condition}",
+                )
             if "U on bare" in table:
-                put(f"U_{condition} on bare", solution.number(table["U on bare"]), "overall coefficient",
-                    f"overall coefficient on bare, {condition}")
+                put(
+                    f"U_{condition} on bare",
+                    solution.number(table["U on bare"]),
+                    "overall coefficient",
+                    f"overall coefficient on bare, {condition}",
+                )
             put(f"UA_{condition}", solution.number(table["UA"]), "conductance", f"conductance, {condition}")
             if "heat flux" in table:
-                put(f"heat_flux_{condition}", solution.number(table["heat flux"]), "heat flux", f"heat flux, {condition}")
-                put(f"heat_flow_{condition}", solution.number(table["heat flow"]), "heat flow", f"heat flow, {condition}")
+                put(
+                    f"heat_flux_{condition}",
+                    solution.number(table["heat flux"]),
+                    "heat flux",
+                    f"heat flux, {condition}",
+                )
+                put(
+                    f"heat_flow_{condition}",
+                    solution.number(table["heat flow"]),
+                    "heat flow",
+                    f"heat flow, {condition}",
+                )
         for name in table:
             if name.startswith("dT "):
-                for condition, solution in reversed(solutions.items()):
-                    put(f"{name} {condition}", solution.number(table[name]), "temperature difference",
-                        f"temperature change of {name.removeprefix('dT ')} that the heat flow implies, {condition}")
+                for condition, solution in reversed(list(solutions.items())):
+                    put(
+                        f"{name} {condition}",
+                        solution.number(table[name]),
+                        "temperature difference",
+                        f"temperature change of {name.removeprefix('dT ')} that the heat flow implies, {condition}",
+                    )
         clean, service = (results[f"U_{condition}"].value for condition in CONDITIONS)
         put("cleanliness", service / clean, "ratio", "cleanliness, U_service/U_clean")
         put("excess_surface", clean / service - 1.0, "ratio", "excess surface, U_clean/U_service − 1")
-        for condition, solution in reversed(solutions.items()):
+        for condition, solution in reversed(list(solutions.items())):
             for name, value in self._interfaces(solution):
                 put(f"T {name} {condition}", value, "temperature", f"temperature {name}, {condition}")
             for element in self.chain.elements:
                 if isinstance(element, Group):
-                    put(f"h {element.name} {condition}", solution.number(table[f"h {element.name}"]), "film coefficient",
-                        f"film coefficient {element.name}, {condition}")
-                put(f"R {element.name} {condition}", solution.number(table[f"R {element.name}"]), "area resistance",
-                    f"resistance of {element.name} on the basis area, {condition}")
+                    put(
+                        f"h {element.name} {condition}",
+                        solution.number(table[f"h {element.name}"]),
+                        "film coefficient",
+                        f"film coefficient {element.name}, {condition}",
+                    )
+                put(
+                    f"R {element.name} {condition}",
+                    solution.number(table[f"R {element.name}"]),
+                    "area resistance",
+                    f"resistance of {element.name} on the basis area, {condition}",
+                )
         self._stream_results(solutions[SERVICE], put)
         for _, branch, drop in drops(self.chain):
-            for condition, solution in reversed(solutions.items()):
-                put(f"dp {branch.stream}_{condition}", solution.number(drop.total.coefficient), "pressure drop",
-                    f"pressure drop of {branch.stream}, {condition}")
+            for condition, solution in reversed(list(solutions.items())):
+                put(
+                    f"dp {branch.stream}_{condition}",
+                    solution.number(drop.total.coefficient),
+                    "pressure drop",
+                    f"pressure drop of {branch.stream}, {condition}",
+                )
         return results
 
     def _stream_results(self, solution: Solution, put) -> None:  # type: ignore[no-untyped-def]
@@ -244,9 +306,17 @@ class _Analysis:
                 if state is None:
                     continue
                 speed = state.flow if state.flow_kind == "speed" else f"{branch.name}/speed"
-                for step, name, kind in ((speed, "speed", "speed"), (f"{branch.name}/Re", "Re", "Reynolds number")):
+                for step, name, kind in (
+                    (speed, "speed", "speed"),
+                    (f"{branch.name}/Re", "Re", "Reynolds number"),
+                ):
                     if step in solution.values:
-                        put(f"{name} {branch.stream}", solution.number(step), kind, f"{kind} of {branch.stream}")
+                        put(
+                            f"{name} {branch.stream}",
+                            solution.number(step),
+                            kind,
+                            f"{kind} of {branch.stream}",
+                        )
 
     def _interfaces(self, solution: Solution) -> list[tuple[str, float]]:
         """Temperatures between terms, from the inside to the outside, and of both wetted surfaces."""
@@ -254,7 +324,9 @@ class _Analysis:
             return []
         temperatures = self._temperatures(solution)
         found = [("inside surface", temperatures[1]), ("outside surface", temperatures[-2])]
-        for index, (before, after) in enumerate(zip(self.chain.elements, self.chain.elements[1:], strict=False), 1):
+        for index, (before, after) in enumerate(
+            zip(self.chain.elements, self.chain.elements[1:], strict=False), 1
+        ):
             found.append((f"{before.name} to {after.name}", temperatures[index]))
         return found
 
@@ -291,9 +363,21 @@ class _Analysis:
             else:
                 own = solution.number(element.resistance)
                 methods = element.material
-            rows.append(TermRow(element.name, _kind(element), self.chain.surfaces[element.surface].name, own, resistance,
-                                resistance / total, coefficient, temperatures[index], temperatures[index + 1], methods,
-                                branches))
+            rows.append(
+                TermRow(
+                    element.name,
+                    _kind(element),
+                    self.chain.surfaces[element.surface].name,
+                    own,
+                    resistance,
+                    resistance / total,
+                    coefficient,
+                    temperatures[index],
+                    temperatures[index + 1],
+                    methods,
+                    branches,
+                )
+            )
         return tuple(rows)
 
     def _branches(self, group: Group, solution: Solution) -> tuple[BranchRow, ...]:
@@ -311,8 +395,10 @@ class _Analysis:
     # -- chain rows ---------------------------------------------------------------------------------
 
     def _rows(self, steps: tuple[ChainStep, ...], solutions: Mapping[str, Solution]) -> tuple[StepRow, ...]:
-        return tuple(StepRow(step, _value(solutions[CLEAN], step.id), _value(solutions[SERVICE], step.id))
-                     for step in steps)
+        return tuple(
+            StepRow(step, _value(solutions[CLEAN], step.id), _value(solutions[SERVICE], step.id))
+            for step in steps
+        )
 
     def _chains(self, solutions: Mapping[str, Solution]) -> tuple[TermChain, ...]:
         """The rows of every term, each step once, at the term that uses it first."""
@@ -320,8 +406,14 @@ class _Analysis:
         shared = tuple(step for step in self.chain.steps if step.owner not in owners)
         chains = []
         if shared:
-            chains.append(TermChain("shared figures", "geometry, streams and derived quantities",
-                                    self._rows(shared, solutions), ()))
+            chains.append(
+                TermChain(
+                    "shared figures",
+                    "geometry, streams and derived quantities",
+                    self._rows(shared, solutions),
+                    (),
+                )
+            )
         seen = {step.id for step in shared}
         for element in self.chain.elements:
             steps = [step for step in self.chain.steps if step.owner in _names(element)]
@@ -336,7 +428,9 @@ class _Analysis:
                 notes += pressure_notes(self.chain, element, solutions)
             fresh = tuple({step.id: step for step in steps if step.id not in seen}.values())
             seen |= {step.id for step in fresh}
-            chains.append(TermChain(element.name, _title(element), self._rows(fresh, solutions), tuple(notes)))
+            chains.append(
+                TermChain(element.name, _title(element), self._rows(fresh, solutions), tuple(notes))
+            )
         return tuple(chains)
 
     def _branch_steps(self, branch: Branch, solutions: Mapping[str, Solution]) -> list[ChainStep]:
@@ -364,7 +458,9 @@ class _Analysis:
         """Properties of streams by place, as far as the chain asked for them."""
         rows = []
         for state in self.chain.streams.values():
-            bulk = self._property_row(state, "bulk", "", f"stream {state.name}", state.temperature, solutions[SERVICE])
+            bulk = self._property_row(
+                state, "bulk", "", f"stream {state.name}", state.temperature, solutions[SERVICE]
+            )
             if bulk is not None:
                 rows.append(bulk)
             rows += self._saturated_rows(state, solutions)
@@ -372,10 +468,19 @@ class _Analysis:
                 for branch in group.branches:
                     if branch.stream != state.name:
                         continue
-                    for place, temperature in (("film", f"{branch.name}/film/T"), ("surface", group.surface_temperature)):
+                    for place, temperature in (
+                        ("film", f"{branch.name}/film/T"),
+                        ("surface", group.surface_temperature),
+                    ):
                         for condition in CONDITIONS:
-                            row = self._property_row(state, place, condition, f"{branch.name}/{place}", temperature,
-                                                     solutions[condition])
+                            row = self._property_row(
+                                state,
+                                place,
+                                condition,
+                                f"{branch.name}/{place}",
+                                temperature,
+                                solutions[condition],
+                            )
                             if row is not None:
                                 rows.append(row)
         return tuple(rows)
@@ -391,16 +496,40 @@ class _Analysis:
                     moves = place == "liquid film"
                     at = f"{branch.name}/liquid film/T" if moves else state.saturation
                     for condition in CONDITIONS if moves else ("",):
-                        row = self._property_row(state, place, condition, f"{branch.name}/{place}", at,
-                                                 solutions[condition or SERVICE])
+                        row = self._property_row(
+                            state,
+                            place,
+                            condition,
+                            f"{branch.name}/{place}",
+                            at,
+                            solutions[condition or SERVICE],
+                        )
                         if row is not None:
                             rows.append(replace(row, phase=phase, pressure=math.nan))
         return rows
 
-    def _property_row(self, state, place: str, condition: str, prefix: str, temperature: str, solution: Solution  # type: ignore[no-untyped-def]
-                      ) -> PropertyRow | None:
-        names = ("density", "viscosity", "conductivity", "heat capacity", "expansion coefficient", SATURATION_FRACTION)
-        used = {name: solution.number(f"{prefix}/{name}") for name in names if f"{prefix}/{name}" in solution.values}
+    def _property_row(
+        self,
+        state: StreamState,
+        place: str,
+        condition: str,
+        prefix: str,
+        temperature: str,
+        solution: Solution,
+    ) -> PropertyRow | None:
+        names = (
+            "density",
+            "viscosity",
+            "conductivity",
+            "heat capacity",
+            "expansion coefficient",
+            SATURATION_FRACTION,
+        )
+        used = {
+            name: solution.number(f"{prefix}/{name}")
+            for name in names
+            if f"{prefix}/{name}" in solution.values
+        }
         if not used or temperature not in solution.values:
             return None
         if all(name in used for name in names[1:4]):
@@ -415,10 +544,10 @@ class _Analysis:
 
     # -- checks and criteria ------------------------------------------------------------------------
 
-    def _limits(self, solution: Solution) -> list:  # type: ignore[type-arg]
+    def _limits(self, solution: Solution) -> list[ChainCheck]:
         return self._circuit_limits(solution) + pressure_drop_checks(self.chain, solution)
 
-    def _circuit_limits(self, solution: Solution) -> list:  # type: ignore[type-arg]
+    def _circuit_limits(self, solution: Solution) -> list[ChainCheck]:
         """The limits of all that the circuit closes on: they can be seen without a finished solution."""
         limits = list(self.chain.checks)
         for element in self.chain.elements:
@@ -433,51 +562,97 @@ class _Analysis:
         results = []
         for condition in reversed(CONDITIONS):
             solution = solutions[condition]
-            results += [evaluate_check(check, solution, name, self.dimensions) for check in self._limits(solution)]
+            results += [
+                evaluate_check(check, solution, name, self.dimensions) for check in self._limits(solution)
+            ]
             results += wall_checks(self.chain, name, solution)
             results += band_checks(self.chain, name, solution)
         return tuple(results)
 
-    def _criteria(self, case: str, results: Mapping[str, Result], inputs: Mapping[str, np.ndarray],
-                  solutions: Mapping[str, Solution]) -> tuple[CriterionResult, ...]:
+    def _criteria(
+        self,
+        case: str,
+        results: Mapping[str, Result],
+        inputs: Mapping[str, np.ndarray],
+        solutions: Mapping[str, Solution],
+    ) -> tuple[CriterionResult, ...]:
         found = []
         for number, criterion in enumerate(self.chain.calculation.acceptance, 1):
             result = results.get(criterion.result)
             if result is None:
                 if not case:
-                    self.collector.add("result-unknown", criterion.place, f"there is no result `{shown(criterion.result)}`",
-                                       found=shown(criterion.result), expected=", ".join(results),
-                                       nearest=nearest_names(criterion.result, results))
+                    self.collector.add(
+                        "result-unknown",
+                        criterion.place,
+                        f"there is no result `{shown(criterion.result)}`",
+                        found=shown(criterion.result),
+                        expected=", ".join(results),
+                        nearest=nearest_names(criterion.result, results),
+                    )
                 continue
             limit = self._limit_of(criterion, result, solutions[SERVICE])
             if limit is None:
                 continue
             margin = (result.value - limit) * OPPOSITE[criterion.operator]
             met = margin >= 0.0 if "=" in criterion.operator else margin > 0.0
-            found.append(CriterionResult(f"criterion {number}", case, criterion.text, result.value, limit, margin, met,
-                                         result.kind, criterion.source))
+            found.append(
+                CriterionResult(
+                    f"criterion {number}",
+                    case,
+                    criterion.text,
+                    result.value,
+                    limit,
+                    margin,
+                    met,
+                    result.kind,
+                    criterion.source,
+                )
+            )
         return tuple(found)
 
     def _limit_of(self, criterion, result: Result, solution: Solution) -> float | None:  # type: ignore[no-untyped-def]
         value = criterion.limit
         if value.symbol:
-            name = next((f"{kind}/{value.symbol}" for kind in ("given", "derived")
-                         if f"{kind}/{value.symbol}" in solution.values), "")
+            name = next(
+                (
+                    f"{kind}/{value.symbol}"
+                    for kind in ("given", "derived")
+                    if f"{kind}/{value.symbol}" in solution.values
+                ),
+                "",
+            )
             if not name:
                 known = [*self.chain.calculation.givens, *self.chain.calculation.derived]
-                self.collector.add("symbol-unknown", value.place, f"`{shown(value.symbol)}` is neither a given nor derived",
-                                   found=value.symbol, expected=", ".join(known), nearest=nearest_names(value.symbol, known))
+                self.collector.add(
+                    "symbol-unknown",
+                    value.place,
+                    f"`{shown(value.symbol)}` is neither a given nor derived",
+                    found=value.symbol,
+                    expected=", ".join(known),
+                    nearest=nearest_names(value.symbol, known),
+                )
                 return None
             if self.dimensions.get(name) != result.kind.dimension:
-                self.collector.add("unit-dimension", value.place, f"`{value.symbol}` is no {result.kind.name}",
-                                   found=value.symbol, expected=result.kind.unit)
+                self.collector.add(
+                    "unit-dimension",
+                    value.place,
+                    f"`{value.symbol}` is no {result.kind.name}",
+                    found=value.symbol,
+                    expected=result.kind.unit,
+                )
                 return None
             return solution.number(name)
         try:
             return as_kind(value.quantity, result.kind).value
         except QuantityFault as error:
-            self.collector.add(error.code, value.place, error.message, found=error.found, expected=error.expected,
-                               nearest=error.nearest)
+            self.collector.add(
+                error.code,
+                value.place,
+                error.message,
+                found=error.found,
+                expected=error.expected,
+                nearest=error.nearest,
+            )
             return None
 
     def _with_acceptances(self, cases: list[CaseOutcome]) -> list[CaseOutcome]:
@@ -503,34 +678,72 @@ class _Analysis:
                 if branch.situation is None:
                     continue
                 used = chosen(branch, base.solutions[SERVICE])
-                others = [candidate for candidate in (*branch.candidates, *branch.alternatives) if candidate is not used]
+                others = [
+                    candidate
+                    for candidate in (*branch.candidates, *branch.alternatives)
+                    if candidate is not used
+                ]
                 order = {method: place for place, method in enumerate(branch.situation.methods)}
                 others.sort(key=lambda candidate: order.get(candidate.method.id, len(order)))
                 rows += [self._cross_row(branch, used, other, inputs, base) for other in others]
-                rows += [CrossRow(branch.name, method, "", "", False, math.nan, math.nan, math.nan, reason)
-                         for method, reason in branch.unusable.items()]
+                rows += [
+                    CrossRow(branch.name, method, "", "", False, math.nan, math.nan, math.nan, reason)
+                    for method, reason in branch.unusable.items()
+                ]
         return tuple(rows)
 
-    def _cross_row(self, branch: Branch, used: Candidate, other: Candidate, inputs: Mapping[str, np.ndarray],
-                   base: CaseOutcome) -> CrossRow:
+    def _cross_row(
+        self,
+        branch: Branch,
+        used: Candidate,
+        other: Candidate,
+        inputs: Mapping[str, np.ndarray],
+        base: CaseOutcome,
+    ) -> CrossRow:
         reference = base.results["U_service"].value
         same = other.method.family == used.method.family
         if not self.chain.has_temperatures and needs_temperatures(self.chain, branch, other):
-            return CrossRow(branch.name, other.method.id, other.method.title, other.method.family, same, math.nan, math.nan,
-                            math.nan, "it needs the temperature of the surface, and one bulk temperature is not stated")
+            return CrossRow(
+                branch.name,
+                other.method.id,
+                other.method.title,
+                other.method.family,
+                same,
+                math.nan,
+                math.nan,
+                math.nan,
+                "it needs the temperature of the surface, and one bulk temperature is not stated",
+            )
         reason = self._out_of_range(other, self._at_solution(other, base.solutions[SERVICE]))
         if reason:
-            return CrossRow(branch.name, other.method.id, other.method.title, other.method.family, same, math.nan,
-                            math.nan, math.nan, reason)
+            return CrossRow(
+                branch.name,
+                other.method.id,
+                other.method.title,
+                other.method.family,
+                same,
+                math.nan,
+                math.nan,
+                math.nan,
+                reason,
+            )
         solution = solve(self.chain, inputs, SERVICE, {branch.name: other})
-        if bool(np.all(solution.converged)):
-            reason = self._out_of_range(other, solution)
-        else:
-            reason = "does not close here"
+        reason = (
+            self._out_of_range(other, solution) if bool(np.all(solution.converged)) else "does not close here"
+        )
         overall = solution.number(self.chain.results["U"])
         coefficient = solution.number(other.coefficient) if other.coefficient in solution.values else math.nan
-        return CrossRow(branch.name, other.method.id, other.method.title, other.method.family, same, coefficient, overall,
-                        overall / reference - 1.0, reason)
+        return CrossRow(
+            branch.name,
+            other.method.id,
+            other.method.title,
+            other.method.family,
+            same,
+            coefficient,
+            overall,
+            overall / reference - 1.0,
+            reason,
+        )
 
     def _at_solution(self, other: Candidate, solution: Solution) -> Solution:
         """A method's own figures at the surface that the used method gives: enough to see most ranges."""
@@ -558,14 +771,29 @@ class _Analysis:
                 surface = next(surface for surface in self.chain.surfaces if surface.name == term.surface)
                 if term.own_resistance == 0.0:
                     continue
-                through = solution.number(surface.area) / term.own_resistance * (
-                    term.inner_temperature - term.outer_temperature)
-                rows.append(ClosureRow(f"heat flow through {term.name}", condition, through, flow,
-                                       _residual(through, flow), "W"))
+                through = (
+                    solution.number(surface.area)
+                    / term.own_resistance
+                    * (term.inner_temperature - term.outer_temperature)
+                )
+                rows.append(
+                    ClosureRow(
+                        f"heat flow through {term.name}",
+                        condition,
+                        through,
+                        flow,
+                        _residual(through, flow),
+                        "W",
+                    )
+                )
             temperatures = self._temperatures(solution)
-            summed = sum(before - after for before, after in zip(temperatures, temperatures[1:], strict=False))
+            summed = sum(before - after for before, after in itertools.pairwise(temperatures))
             whole = temperatures[0] - temperatures[-1]
-            rows.append(ClosureRow("summed temperature drops", condition, summed, whole, _residual(summed, whole), "K"))
+            rows.append(
+                ClosureRow(
+                    "summed temperature drops", condition, summed, whole, _residual(summed, whole), "K"
+                )
+            )
         return (*rows, *self._closure_of_areas(solutions))
 
     def _closure_of_areas(self, solutions: Mapping[str, Solution]) -> tuple[ClosureRow, ...]:
@@ -574,9 +802,19 @@ class _Analysis:
             solution = solutions[condition]
             conductance = solution.number(self.chain.results["UA"])
             for surface in self.chain.surfaces:
-                value = solution.number(self.chain.results[f"U on {surface.name}"]) * solution.number(surface.area)
-                rows.append(ClosureRow(f"U·A on {surface.name}", condition, value, conductance,
-                                       _residual(value, conductance), "W/K"))
+                value = solution.number(self.chain.results[f"U on {surface.name}"]) * solution.number(
+                    surface.area
+                )
+                rows.append(
+                    ClosureRow(
+                        f"U·A on {surface.name}",
+                        condition,
+                        value,
+                        conductance,
+                        _residual(value, conductance),
+                        "W/K",
+                    )
+                )
         return tuple(rows)
 
     def _sensitivity(self, base: CaseOutcome) -> tuple[SensitivityRow, ...]:
@@ -640,8 +878,9 @@ def _kind(element: Group | Layer) -> str:
 def _title(element: Group | Layer) -> str:
     if isinstance(element, Layer):
         return element.material or element.kind
-    return " beside ".join(branch.situation.title if branch.situation is not None else branch.kind
-                           for branch in element.branches)
+    return " beside ".join(
+        branch.situation.title if branch.situation is not None else branch.kind for branch in element.branches
+    )
 
 
 def _card_words(candidate: Candidate) -> str:
@@ -654,10 +893,14 @@ def _branch_notes(branch: Branch, solutions: Mapping[str, Solution]) -> list[str
     if branch.situation is None:
         return [f"{branch.name}: {service.because}."]
     if clean is service:
-        return [f"{branch.name}: {service.method.title} ({_card_words(service)}), {service.because}.",
-                *_accuracy_words(branch, service)]
-    return [f"{branch.name}, service: {service.method.title} ({service.method.id}), {service.because}.",
-            f"{branch.name}, clean: {clean.method.title} ({clean.method.id}), {clean.because}."]
+        return [
+            f"{branch.name}: {service.method.title} ({_card_words(service)}), {service.because}.",
+            *_accuracy_words(branch, service),
+        ]
+    return [
+        f"{branch.name}, service: {service.method.title} ({service.method.id}), {service.because}.",
+        f"{branch.name}, clean: {clean.method.title} ({clean.method.id}), {clean.because}.",
+    ]
 
 
 def _accuracy_words(branch: Branch, candidate: Candidate) -> list[str]:
@@ -665,8 +908,10 @@ def _accuracy_words(branch: Branch, candidate: Candidate) -> list[str]:
     stated = candidate.method.accuracy
     if stated is None:
         return [f"{branch.name}: no accuracy of {candidate.method.id} is stated."]
-    return [f"{branch.name}: accuracy of {candidate.method.id} within {stated.within}, {stated.coverage}; stated by"
-            f" {stated.stated_by} (standing: {stated.standing})."]
+    return [
+        f"{branch.name}: accuracy of {candidate.method.id} within {stated.within}, {stated.coverage}; stated by"
+        f" {stated.stated_by} (standing: {stated.standing})."
+    ]
 
 
 def _controlling(terms: tuple[TermRow, ...]) -> tuple[str, float]:
@@ -703,13 +948,22 @@ def _with_mean(cases: list[CaseOutcome], places: tuple[str, ...]) -> CaseOutcome
         values = [case.results[f"U_{condition}"].value for case in at.values()]
         mean = sum(values) / len(values)
         results[f"U_{condition} mean of places"] = Result(
-            f"U_{condition} mean of places", mean, base.results[f"U_{condition}"].kind,
-            f"arithmetic mean of U {condition} over {', '.join(at)}")
+            f"U_{condition} mean of places",
+            mean,
+            base.results[f"U_{condition}"].kind,
+            f"arithmetic mean of U {condition} over {', '.join(at)}",
+        )
         spread = (max(values) - min(values)) / mean
         if spread > PLACES_SPREAD:
-            items.append(OpenItem(f"places / {condition}", "check", f"U {condition} differs by {100.0 * spread:.0f} % over"
-                                  f" the places {', '.join(at)}, more than {100.0 * PLACES_SPREAD:.0f} %: one U does not"
-                                  " stand for the whole unit."))
+            items.append(
+                OpenItem(
+                    f"places / {condition}",
+                    "check",
+                    f"U {condition} differs by {100.0 * spread:.0f} % over"
+                    f" the places {', '.join(at)}, more than {100.0 * PLACES_SPREAD:.0f} %: one U does not"
+                    " stand for the whole unit.",
+                )
+            )
     return replace(base, results=results, open_items=tuple(items))
 
 

@@ -29,10 +29,10 @@ from calcbook.chain.types import (
     StreamState,
     follows_temperature,
 )
-from calcbook.faults import Collector, Faults, nearest_names, shown
+from calcbook.faults import Collector, Faults, Place, nearest_names, shown
 from calcbook.formulas import Relation, RelationFault, dimension, parse_expression
 from calcbook.library import Library, vocabulary
-from calcbook.library.cards import Limit, Method
+from calcbook.library.cards import Limit, Method, State
 from calcbook.library.conductivity import ConductivityTable
 from calcbook.library.operations import RelationOperation
 from calcbook.quantities import DIMENSIONLESS, QuantityFault, QuantityKind, as_kind
@@ -60,8 +60,11 @@ class _Builder:
         calculation, scope = self.calculation, self.scope
         self._givens()
         self._derived()
-        self.streams = {name: state for name, stream in calculation.streams.items()
-                        if (state := lay_out_stream(scope, stream, self.library)) is not None}
+        self.streams = {
+            name: state
+            for name, stream in calculation.streams.items()
+            if (state := lay_out_stream(scope, stream, self.library)) is not None
+        }
         self.checks += lay_out_cards(scope, self.library, self.streams)
         terms = calculation.resistances
         walls = tuple(term for term in terms if term.kind == "wall")
@@ -75,8 +78,11 @@ class _Builder:
         self.checks += shape.checks
         self.early = frozenset(scope.steps)
         elements = self._elements(terms, shape)
-        basis = shape.surface_named(scope, calculation.report.u_on, calculation.report.u_on_place) \
-            if calculation.report.u_on else None
+        basis = (
+            shape.surface_named(scope, calculation.report.u_on, calculation.report.u_on_place)
+            if calculation.report.u_on
+            else None
+        )
         self._check_temperatures(elements)
         self._assumptions_of_engineer()
         check_services(calculation, self.collector)
@@ -91,19 +97,40 @@ class _Builder:
         """A caution where a stream would change its temperature by more than its stated mean can stand for."""
         first, last = elements[0], elements[-1]
         assert isinstance(first, Group) and isinstance(last, Group)
-        limit = Limit("temperature change", parse_expression("dT <= abs(T_in - T_out)/2"), "caution",
-                      "one mean temperature stands for the stream only while its change is small beside the difference"
-                      " of the streams", "common practice", "common practice", self.calculation.place)
+        limit = Limit(
+            "temperature change",
+            parse_expression("dT <= abs(T_in - T_out)/2"),
+            "caution",
+            "one mean temperature stands for the stream only while its change is small beside the difference"
+            " of the streams",
+            "common practice",
+            "common practice",
+            self.calculation.place,
+        )
         return [
-            ChainCheck(f"{name.removeprefix('dT ')} / heat balance / temperature change", name.removeprefix("dT "),
-                       "heat balance", limit, {"dT": bound, "T_in": first.bulk, "T_out": last.bulk})
-            for name, bound in results.items() if name.startswith("dT ")
+            ChainCheck(
+                f"{name.removeprefix('dT ')} / heat balance / temperature change",
+                name.removeprefix("dT "),
+                "heat balance",
+                limit,
+                {"dT": bound, "T_in": first.bulk, "T_out": last.bulk},
+            )
+            for name, bound in results.items()
+            if name.startswith("dT ")
         ]
 
-    def _finished(self, elements: tuple[Element, ...], shape: Shape, basis: int, circuit: tuple[ChainStep, ...],
-                  results: dict[str, str]) -> Chain:
+    def _finished(
+        self,
+        elements: tuple[Element, ...],
+        shape: Shape,
+        basis: int,
+        circuit: tuple[ChainStep, ...],
+        results: dict[str, str],
+    ) -> Chain:
         scope = self.scope
-        later = {step.id for element in elements for step in _steps_of(element)} | {step.id for step in circuit}
+        later = {step.id for element in elements for step in _steps_of(element)} | {
+            step.id for step in circuit
+        }
         static = tuple(step for step in scope.steps.values() if step.id in self.early or step.id not in later)
         self._mark_unused()
         return Chain(
@@ -125,8 +152,10 @@ class _Builder:
             constants=dict(scope.constants),
             dimensions=dict(scope.dimensions),
             per_metre=shape.per_metre,
-            restated={case: {symbol: self._restated_value(symbol, given.value) for symbol, given in changes.items()}
-                      for case, changes in self.calculation.cases.items()},
+            restated={
+                case: {symbol: self._restated_value(symbol, given.value) for symbol, given in changes.items()}
+                for case, changes in self.calculation.cases.items()
+            },
         )
 
     def _restated_value(self, symbol: str, value: Value) -> float:
@@ -142,8 +171,12 @@ class _Builder:
             self.scope.dimensions[f"given/{symbol}"] = given.value.quantity.dimension
             self.scope.check_source(given.value, f"given/{symbol}")
             if given.link is not None and given.link.state != CURRENT:
-                self.scope.open(f"given/{symbol}/link", "link", f"{symbol} takes {given.link.result} from"
-                                f" {given.link.calculation} revision {given.link.revision}: {given.link.state}.")
+                self.scope.open(
+                    f"given/{symbol}/link",
+                    "link",
+                    f"{symbol} takes {given.link.result} from"
+                    f" {given.link.calculation} revision {given.link.revision}: {given.link.state}.",
+                )
         for case, changes in self.calculation.cases.items():
             for symbol, given in changes.items():
                 self.scope.check_source(given.value, f"case {case}/{symbol}")
@@ -156,15 +189,28 @@ class _Builder:
             assert quantity is not None
             kind = self.scope.kinds.get(symbol) or _kind_of_dimension(quantity.dimension, quantity.reading)
             figure = as_kind(quantity, kind).value if symbol in self.scope.kinds else quantity.value
-            typed[f"given/{symbol}"] = Input(f"given/{symbol}", symbol, given.meaning, kind, figure, given.value.text,
-                                             given.source, given.place, True)
+            typed[f"given/{symbol}"] = Input(
+                f"given/{symbol}",
+                symbol,
+                given.meaning,
+                kind,
+                figure,
+                given.value.text,
+                given.source,
+                given.place,
+                True,
+            )
         return typed
 
     def _derived(self) -> None:
         """Derived quantities in the order of what they need; a circle is told in full."""
         waiting = dict(self.calculation.derived)
         while waiting:
-            ready = [item for item in waiting.values() if not any(symbol in waiting for symbol in item.relation.symbols)]
+            ready = [
+                item
+                for item in waiting.values()
+                if not any(symbol in waiting for symbol in item.relation.symbols)
+            ]
             if not ready:
                 self._report_circle(waiting)
                 return
@@ -178,11 +224,16 @@ class _Builder:
         while True:
             following = next(symbol for symbol in waiting[path[-1]].relation.symbols if symbol in waiting)
             if following in path:
-                path = [*path[path.index(following):], following]
+                path = [*path[path.index(following) :], following]
                 break
             path.append(following)
-        self.collector.add("derived-circular", waiting[path[0]].place, "derived quantities need each other in a circle",
-                           found=" needs ".join(path), expected="relations that end at givens")
+        self.collector.add(
+            "derived-circular",
+            waiting[path[0]].place,
+            "derived quantities need each other in a circle",
+            found=" needs ".join(path),
+            expected="relations that end at givens",
+        )
 
     def _derived_step(self, item: Derived) -> None:
         inputs = {}
@@ -193,14 +244,28 @@ class _Builder:
                 inputs[symbol] = f"derived/{symbol}"
             else:
                 known = [*self.calculation.givens, *self.calculation.derived]
-                self.collector.add("symbol-unknown", item.place, f"`{shown(symbol)}` is neither a given nor derived",
-                                   found=shown(symbol), expected=", ".join(known), nearest=nearest_names(symbol, known))
+                self.collector.add(
+                    "symbol-unknown",
+                    item.place,
+                    f"`{shown(symbol)}` is neither a given nor derived",
+                    found=shown(symbol),
+                    expected=", ".join(known),
+                    nearest=nearest_names(symbol, known),
+                )
                 return
             self.scope.used_in.setdefault(symbol, []).append(f"derived {item.symbol}")
         if any(name not in self.scope.dimensions for name in inputs.values()):
             return
-        self.scope.relation_step(f"derived/{item.symbol}", item.symbol, item.meaning, "derived", item.relation, inputs,
-                                 "calculation file", place=item.place)
+        self.scope.relation_step(
+            f"derived/{item.symbol}",
+            item.symbol,
+            item.meaning,
+            "derived",
+            item.relation,
+            inputs,
+            "calculation file",
+            place=item.place,
+        )
 
     def _mark_unused(self) -> None:
         for symbol in self.calculation.givens:
@@ -210,11 +275,16 @@ class _Builder:
     def _assumptions_of_engineer(self) -> None:
         for revision in self.calculation.revisions:
             if revision.reason.casefold().strip(" .…") in ("to be written", "tbd", ""):
-                self.scope.open(f"revision {revision.revision} / reason", "revision",
-                                f"The reason of revision {revision.revision} is to be written.")
+                self.scope.open(
+                    f"revision {revision.revision} / reason",
+                    "revision",
+                    f"The reason of revision {revision.revision} is to be written.",
+                )
         for item in self.calculation.assumptions:
             if not item.is_verified:
-                self.scope.open(f"assumption {item.id}", "assumption", f"Assumption {item.id} is not verified.")
+                self.scope.open(
+                    f"assumption {item.id}", "assumption", f"Assumption {item.id} is not verified."
+                )
 
     # -- order of terms -----------------------------------------------------------------------------
 
@@ -222,22 +292,45 @@ class _Builder:
         before = len(list(self.collector))
         ends = ("film", "parallel", "radiation")
         if len(terms) < 2 or terms[0].kind not in ends:
-            self.collector.add("film-missing", terms[0].place, "no film stands on the inside",
-                               found=terms[0].kind or terms[0].name, expected="the first term of kind film")
+            self.collector.add(
+                "film-missing",
+                terms[0].place,
+                "no film stands on the inside",
+                found=terms[0].kind or terms[0].name,
+                expected="the first term of kind film",
+            )
         if len(terms) < 2 or terms[-1].kind not in ends:
-            self.collector.add("film-missing", terms[-1].place, "no film stands on the outside",
-                               found=terms[-1].kind or terms[-1].name, expected="the last term of kind film")
+            self.collector.add(
+                "film-missing",
+                terms[-1].place,
+                "no film stands on the outside",
+                found=terms[-1].kind or terms[-1].name,
+                expected="the last term of kind film",
+            )
         walls = [index for index, term in enumerate(terms) if term.kind == "wall"]
         for index, term in enumerate(terms[1:-1], 1):
             if term.kind in ends:
-                self.collector.add("term-order", term.place, f"`{term.name}` stands between other terms",
-                                   found=term.kind, expected="films and radiation first or last only")
+                self.collector.add(
+                    "term-order",
+                    term.place,
+                    f"`{term.name}` stands between other terms",
+                    found=term.kind,
+                    expected="films and radiation first or last only",
+                )
             elif term.kind == "fouling" and walls and walls[0] < index < walls[-1]:
-                self.collector.add("term-order", term.place, f"`{term.name}` lies between two walls",
-                                   expected="fouling between a film and the wall next to it")
+                self.collector.add(
+                    "term-order",
+                    term.place,
+                    f"`{term.name}` lies between two walls",
+                    expected="fouling between a film and the wall next to it",
+                )
             elif term.kind == "contact" and not (walls and walls[0] < index < walls[-1]):
-                self.collector.add("term-order", term.place, f"`{term.name}` does not lie between two walls",
-                                   expected="a contact between two walls")
+                self.collector.add(
+                    "term-order",
+                    term.place,
+                    f"`{term.name}` does not lie between two walls",
+                    expected="a contact between two walls",
+                )
         return len(list(self.collector)) == before
 
     # -- elements -----------------------------------------------------------------------------------
@@ -248,9 +341,14 @@ class _Builder:
         for term in terms:
             for name in term.includes:
                 if name not in known:
-                    self.collector.add("term-unknown", term.place_of("includes"), f"there is no term `{shown(name)}`",
-                                       found=shown(name), expected=", ".join(sorted(known)),
-                                       nearest=nearest_names(name, known))
+                    self.collector.add(
+                        "term-unknown",
+                        term.place_of("includes"),
+                        f"there is no term `{shown(name)}`",
+                        found=shown(name),
+                        expected=", ".join(sorted(known)),
+                        nearest=nearest_names(name, known),
+                    )
         elements: list[Element | None] = []
         at = 0
         for index, term in enumerate(terms):
@@ -261,8 +359,12 @@ class _Builder:
             if wall is not None:
                 at = wall.first + 1
             if term.name in included:
-                self.scope.assume(f"{term.name}/included", f"{term.name} is not counted: a stated coefficient includes it.",
-                                  "stated in the calculation file", term.name)
+                self.scope.assume(
+                    f"{term.name}/included",
+                    f"{term.name} is not counted: a stated coefficient includes it.",
+                    "stated in the calculation file",
+                    term.name,
+                )
                 continue
             elements.append(self._wall(wall, shape) if wall is not None else self._layer(term, shape, at))
         if any(element is None for element in elements):
@@ -283,13 +385,17 @@ class _Builder:
             if not isinstance(element, Layer) or element.kind != "fouling":
                 break
             fouling.append(element)
-        for element in part[len(fouling):]:
+        for element in part[len(fouling) :]:
             if not isinstance(element, Layer) or element.kind == "wall":
                 break
             if element.kind == "fouling":
                 term = next(term for term in self.calculation.resistances if term.name == element.name)
-                self.collector.add("term-order", term.place, f"`{element.name}` does not lie next to the film with fins",
-                                   expected="only fouling between the fins and their film")
+                self.collector.add(
+                    "term-order",
+                    term.place,
+                    f"`{element.name}` does not lie next to the film with fins",
+                    expected="only fouling between the fins and their film",
+                )
                 return None
         layer = self._fins_layer(finned, shape, group, fouling)
         if layer is None:
@@ -297,29 +403,52 @@ class _Builder:
         place = 1 + len(fouling) if inside else len(elements) - 1 - len(fouling)
         return (*elements[:place], layer, *elements[place:])
 
-    def _fins_layer(self, finned: FinnedSide, shape: Shape, group: Group, fouling: list[Layer]) -> Layer | None:
+    def _fins_layer(
+        self, finned: FinnedSide, shape: Shape, group: Group, fouling: list[Layer]
+    ) -> Layer | None:
         first, second = f"{finned.name}/T_1", f"{finned.name}/T_2"
         if not {"material", "conductivity"} & {*finned.term.texts, *finned.term.values}:
-            self.collector.add("need-missing", finned.term.place, f"the {finned.name} have no conductivity",
-                               expected="material: <card> or conductivity: … W/(m K)")
+            self.collector.add(
+                "need-missing",
+                finned.term.place,
+                f"the {finned.name} have no conductivity",
+                expected="material: <card> or conductivity: … W/(m K)",
+            )
             return None
         conductivity, table = self._conductivity(finned.term, first, second)
         if not conductivity:
             return None
-        layer = lay_out_fins_layer(self.scope, self.library, finned, shape, group, fouling, conductivity,
-                                   (first, second) if table is not None else ("", ""))
+        layer = lay_out_fins_layer(
+            self.scope,
+            self.library,
+            finned,
+            shape,
+            group,
+            fouling,
+            conductivity,
+            (first, second) if table is not None else ("", ""),
+        )
         if layer is None or table is None:
             return layer
-        self.scope.assume(f"{finned.name}/conductivity", "The fins have one conductivity: the mean of their card between the root"
-                          " and the mean temperature of the finned surface.", "a fin card takes a constant conductivity", finned.name)
+        self.scope.assume(
+            f"{finned.name}/conductivity",
+            "The fins have one conductivity: the mean of their card between the root"
+            " and the mean temperature of the finned surface.",
+            "a fin card takes a constant conductivity",
+            finned.name,
+        )
         return replace(layer, checks=layer.checks + self._material_checks(finned.term, table, first, second))
 
     def _surface(self, term: Term, shape: Shape, default: int) -> int | None:
         name = term.texts.get("on", "")
         if name:
             return shape.surface_named(self.scope, name, term.place_of("on"))
-        self.scope.assume(f"{term.name}/on", f"{term.name} acts on the surface {shape.surfaces[default].name}.",
-                          "the surface next to it; no other is stated", term.name)
+        self.scope.assume(
+            f"{term.name}/on",
+            f"{term.name} acts on the surface {shape.surfaces[default].name}.",
+            "the surface next to it; no other is stated",
+            term.name,
+        )
         return default
 
     def _layer(self, term: Term, shape: Shape, at: int) -> Layer | None:
@@ -329,18 +458,33 @@ class _Builder:
             return None
         if term.deposit is not None:
             return self._deposit(term, shape, surface)
-        resistance = self.scope.value(term.values.get("resistance"), "area resistance", term.name, "resistance")
+        resistance = self.scope.value(
+            term.values.get("resistance"), "area resistance", term.name, "resistance"
+        )
         if not resistance and "coefficient" in term.values:
-            coefficient = self.scope.value(term.values["coefficient"], "film coefficient", term.name, "coefficient")
+            coefficient = self.scope.value(
+                term.values["coefficient"], "film coefficient", term.name, "coefficient"
+            )
             if coefficient:
-                resistance = self.scope.relation_step(f"{term.name}/R", "R", "area resistance", term.name,
-                                                      parse_expression("1/h"), {"h": coefficient}, "stated",
-                                                      "area resistance")
+                resistance = self.scope.relation_step(
+                    f"{term.name}/R",
+                    "R",
+                    "area resistance",
+                    term.name,
+                    parse_expression("1/h"),
+                    {"h": coefficient},
+                    "stated",
+                    "area resistance",
+                )
         if not resistance:
             if "resistance" not in term.values and "coefficient" not in term.values:
-                self.collector.add("need-missing", term.place, f"`{term.name}` has no resistance",
-                                   expected="resistance: … m^2 K/W"
-                                   + (", or deposit: {thickness: …, conductivity: …}" if term.kind == "fouling" else ""))
+                self.collector.add(
+                    "need-missing",
+                    term.place,
+                    f"`{term.name}` has no resistance",
+                    expected="resistance: … m^2 K/W"
+                    + (", or deposit: {thickness: …, conductivity: …}" if term.kind == "fouling" else ""),
+                )
             return None
         return Layer(term.name, term.kind, surface, resistance)
 
@@ -356,11 +500,18 @@ class _Builder:
     def _deposit(self, term: Term, shape: Shape, surface: int) -> Layer | None:
         assert term.deposit is not None
         if term.deposit.narrows and self._wetted_surface(term, shape) is not None:
-            self.collector.add("key-conflict", term.deposit.place, "a deposit on fins cannot narrow the flow",
-                               found="narrows: yes", expected="narrows: no on a finned surface")
+            self.collector.add(
+                "key-conflict",
+                term.deposit.place,
+                "a deposit on fins cannot narrow the flow",
+                found="narrows: yes",
+                expected="narrows: no on a finned surface",
+            )
             return None
         thickness = self.scope.value(term.deposit.thickness, "thickness", term.name, "thickness")
-        conductivity = self.scope.value(term.deposit.conductivity, "wall conductivity", term.name, "conductivity")
+        conductivity = self.scope.value(
+            term.deposit.conductivity, "wall conductivity", term.name, "conductivity"
+        )
         if not thickness or not conductivity:
             return None
         inputs = {"t": thickness, "k": conductivity}
@@ -370,14 +521,36 @@ class _Builder:
             text, inputs["d_i"] = "d_i*ln(d_i/(d_i - 2*t))/(2*k)", shape.surfaces[0].diameter
         else:
             text, inputs["d_o"] = "d_o*ln((d_o + 2*t)/d_o)/(2*k)", shape.surfaces[surface].diameter
-        resistance = self.scope.relation_step(f"{term.name}/R", "R_f", "area resistance of the deposit", term.name,
-                                              parse_expression(text), inputs, "deposit", "area resistance")
-        checks = ()
+        resistance = self.scope.relation_step(
+            f"{term.name}/R",
+            "R_f",
+            "area resistance of the deposit",
+            term.name,
+            parse_expression(text),
+            inputs,
+            "deposit",
+            "area resistance",
+        )
+        checks: tuple[ChainCheck, ...] = ()
         if "d_i" in inputs:
-            limit = Limit("bore", parse_expression("2*t < d_i"), "stop", "the deposit leaves a bore", "common practice",
-                          "common practice", term.deposit.place)
-            checks = (ChainCheck(f"{term.name} / deposit / bore", term.name, "deposit", limit,
-                                 {"t": thickness, "d_i": inputs["d_i"]}),)
+            limit = Limit(
+                "bore",
+                parse_expression("2*t < d_i"),
+                "stop",
+                "the deposit leaves a bore",
+                "common practice",
+                "common practice",
+                term.deposit.place,
+            )
+            checks = (
+                ChainCheck(
+                    f"{term.name} / deposit / bore",
+                    term.name,
+                    "deposit",
+                    limit,
+                    {"t": thickness, "d_i": inputs["d_i"]},
+                ),
+            )
         return Layer(term.name, term.kind, surface, resistance, checks=checks)
 
     # -- walls --------------------------------------------------------------------------------------
@@ -408,7 +581,9 @@ class _Builder:
         resistance = names[program.result]
         steps = film.ancestors([resistance])
         own = tuple(step for step in steps if step.owner == term.name)
-        checks = film.checks(program, names) + (self._material_checks(term, table, first, second) if table else ())
+        checks = film.checks(program, names) + (
+            self._material_checks(term, table, first, second) if table else ()
+        )
         if table is None:
             return Layer(term.name, "wall", wall.first + 1, resistance, checks=checks)
         return Layer(term.name, "wall", wall.first + 1, resistance, own, first, second, table.id, checks)
@@ -416,11 +591,17 @@ class _Builder:
     def _conductivity(self, term: Term, first: str, second: str) -> tuple[str, ConductivityTable | None]:
         """The id of a wall's conductivity, and its table where it follows the wall's temperatures."""
         if "conductivity" in term.values:
-            return self.scope.value(term.values["conductivity"], "wall conductivity", term.name, "conductivity"), None
+            return self.scope.value(
+                term.values["conductivity"], "wall conductivity", term.name, "conductivity"
+            ), None
         name = term.texts.get("material", "")
         if not name:
-            self.collector.add("need-missing", term.place, f"the wall `{term.name}` has no conductivity",
-                               expected="material: <card> or conductivity: … W/(m K)")
+            self.collector.add(
+                "need-missing",
+                term.place,
+                f"the wall `{term.name}` has no conductivity",
+                expected="material: <card> or conductivity: … W/(m K)",
+            )
             return "", None
         try:
             card = self.library.material(name)
@@ -433,13 +614,24 @@ class _Builder:
         self._card_state(card.id, card.state.status, card.state.successor, term)
         table = ConductivityTable(card)
         self.scope.dimensions[first] = self.scope.dimensions[second] = vocabulary()["temperature"].dimension
-        column = self.scope.constant(f"{term.name}/table.k", table, vocabulary()["wall conductivity"].dimension)
+        column = self.scope.constant(
+            f"{term.name}/table.k", table, vocabulary()["wall conductivity"].dimension
+        )
         conductivity = self.scope.relation_step(
-            f"{term.name}/{card.id}/k", "k", "mean conductivity", term.name, parse_expression("mean(table.k, T_1, T_2)"),
-            {"table.k": column, "T_1": first, "T_2": second}, card.id, "wall conductivity")
+            f"{term.name}/{card.id}/k",
+            "k",
+            "mean conductivity",
+            term.name,
+            parse_expression("mean(table.k, T_1, T_2)"),
+            {"table.k": column, "T_1": first, "T_2": second},
+            card.id,
+            "wall conductivity",
+        )
         return conductivity, table
 
-    def _material_checks(self, term: Term, table: ConductivityTable, first: str, second: str) -> tuple[ChainCheck, ...]:
+    def _material_checks(
+        self, term: Term, table: ConductivityTable, first: str, second: str
+    ) -> tuple[ChainCheck, ...]:
         card = self.library.material(table.id)
         low, high = table.limits
         if card.outside == "hold last" and low == high:
@@ -449,15 +641,31 @@ class _Builder:
         for symbol, bound in (("T_1", first), ("T_2", second)):
             that = parse_expression(f"{low!r}*K_1 <= {symbol} <= {high!r}*K_1")
             unit = self.scope.constant("one kelvin", 1.0, vocabulary()["temperature"].dimension)
-            limit = Limit(f"table {symbol}", that, "range", "conductivity is tabulated within these temperatures",
-                          source.cite, source.standing, card.where)
-            checks.append(ChainCheck(f"{term.name} / {card.id} / table {symbol}", term.name, card.id, limit,
-                                     {symbol: bound, "K_1": unit}))
+            limit = Limit(
+                f"table {symbol}",
+                that,
+                "range",
+                "conductivity is tabulated within these temperatures",
+                source.cite,
+                source.standing,
+                card.where,
+            )
+            checks.append(
+                ChainCheck(
+                    f"{term.name} / {card.id} / table {symbol}",
+                    term.name,
+                    card.id,
+                    limit,
+                    {symbol: bound, "K_1": unit},
+                )
+            )
         return tuple(checks)
 
     def _card_state(self, card: str, status: str, successor: str, term: Term) -> None:
         if status == "withdrawn":
-            self.collector.add("card-withdrawn", term.place, f"the card {card} is withdrawn", expected=successor)
+            self.collector.add(
+                "card-withdrawn", term.place, f"the card {card} is withdrawn", expected=successor
+            )
 
     # -- groups -------------------------------------------------------------------------------------
 
@@ -476,9 +684,15 @@ class _Builder:
         bulk = films[0].reference
         for other in films[1:]:
             if other.reference != bulk:
-                self.collector.add("term-order", term.place, "films side by side act on one fluid",
-                                   expected="one stream or temperature for the films of a parallel term")
-        return Group(term.name, side, surface, bulk, tuple(branch for branch in branches if branch is not None))
+                self.collector.add(
+                    "term-order",
+                    term.place,
+                    "films side by side act on one fluid",
+                    expected="one stream or temperature for the films of a parallel term",
+                )
+        return Group(
+            term.name, side, surface, bulk, tuple(branch for branch in branches if branch is not None)
+        )
 
     def _branch(self, term: Term, group: str, shape: Shape, side: str, surface: int) -> Branch | None:
         if term.kind == "radiation":
@@ -492,37 +706,59 @@ class _Builder:
         if name in self.streams:
             return self.streams[name]
         if name and name not in self.calculation.streams:
-            self.collector.add("stream-unknown", term.place_of("stream"), f"there is no stream `{shown(name)}`",
-                               found=shown(name), expected=", ".join(self.calculation.streams) or "a stream",
-                               nearest=nearest_names(name, self.calculation.streams))
+            self.collector.add(
+                "stream-unknown",
+                term.place_of("stream"),
+                f"there is no stream `{shown(name)}`",
+                found=shown(name),
+                expected=", ".join(self.calculation.streams) or "a stream",
+                nearest=nearest_names(name, self.calculation.streams),
+            )
         return None
 
     def _film(self, term: Term, group: str, shape: Shape, side: str) -> Branch | None:
         for key in ("stream", "situation"):
             if key not in term.texts:
-                self.collector.add("key-missing", term.place, f"the film `{term.name}` lacks `{key}`",
-                                   expected="stream and situation, or a stated coefficient")
+                self.collector.add(
+                    "key-missing",
+                    term.place,
+                    f"the film `{term.name}` lacks `{key}`",
+                    expected="stream and situation, or a stated coefficient",
+                )
         stream = self._stream_of(term)
         name = term.texts.get("situation", "")
         if not name:
             return None
         if name not in self.library.names("situations"):
-            self.collector.add("situation-unknown", term.place_of("situation"), f"there is no situation `{shown(name)}`",
-                               found=shown(name), expected=", ".join(self.library.names("situations")),
-                               nearest=nearest_names(name, self.library.names("situations")))
+            self.collector.add(
+                "situation-unknown",
+                term.place_of("situation"),
+                f"there is no situation `{shown(name)}`",
+                found=shown(name),
+                expected=", ".join(self.library.names("situations")),
+                nearest=nearest_names(name, self.library.names("situations")),
+            )
             return None
         situation = self.library.situation(name)
         if shape.name not in situation.shapes or side not in situation.surfaces:
-            self.collector.add("situation-not-here", term.place_of("situation"),
-                               f"`{name}` does not fit the {side} of a {shape.name}",
-                               found=f"{side} of a {shape.name}",
-                               expected=f"{' or '.join(situation.surfaces)} of a {' or '.join(situation.shapes)}")
+            self.collector.add(
+                "situation-not-here",
+                term.place_of("situation"),
+                f"`{name}` does not fit the {side} of a {shape.name}",
+                found=f"{side} of a {shape.name}",
+                expected=f"{' or '.join(situation.surfaces)} of a {' or '.join(situation.shapes)}",
+            )
             return None
         method = term.texts.get("method", "")
         if method and method not in self.library.names("methods"):
-            self.collector.add("method-unknown", term.place_of("method"), f"there is no method `{shown(method)}`",
-                               found=shown(method), expected=", ".join(situation.methods),
-                               nearest=nearest_names(method, (*situation.methods, *self.library.names("methods"))))
+            self.collector.add(
+                "method-unknown",
+                term.place_of("method"),
+                f"there is no method `{shown(method)}`",
+                found=shown(method),
+                expected=", ".join(situation.methods),
+                nearest=nearest_names(method, (*situation.methods, *self.library.names("methods"))),
+            )
             return None
         if stream is None:
             return None
@@ -533,7 +769,9 @@ class _Builder:
             return None
         if self.finned is not None and has_fins:
             dimensions = {**dimensions, **self.finned.figures}
-        film = FilmScope(self.scope, self.library, term, group, dimensions, stream, situation, deposit_surface=moved)
+        film = FilmScope(
+            self.scope, self.library, term, group, dimensions, stream, situation, deposit_surface=moved
+        )
         self._check_with(term, situation, film)
         branch = film.branch()
         if branch is not None:
@@ -541,7 +779,9 @@ class _Builder:
             branch = replace(branch, pressure_drop=drop, no_pressure_drop=reason)
         self.checks += film.vapour_checks()
         for candidate in branch.candidates if branch is not None else ():
-            self._card_state(candidate.method.id, candidate.method.state.status, candidate.method.state.successor, term)
+            self._card_state(
+                candidate.method.id, candidate.method.state.status, candidate.method.state.successor, term
+            )
         return branch
 
     def _wetted(self, shape: Shape, side: str) -> tuple[dict[str, str], tuple[str, str] | None]:
@@ -559,10 +799,22 @@ class _Builder:
             if not thickness:
                 return shape.dimensions, None
             wetted = self.scope.relation_step(
-                f"{term.name}/wetted diameter", "d_n", f"{key} over {term.name} (s = 1 in service, 0 clean)", term.name,
-                parse_expression(f"d {sign} 2*t*s"), {"d": wetted, "t": thickness, "s": SERVICE_FLAG}, "deposit", key)
-        self.scope.assume(f"{layers[0].name}/narrows", f"The deposit moves the {side} surface that the fluid touches; the"
-                          " film is referred to the metal.", "narrows is answered by yes", layers[0].name)
+                f"{term.name}/wetted diameter",
+                "d_n",
+                f"{key} over {term.name} (s = 1 in service, 0 clean)",
+                term.name,
+                parse_expression(f"d {sign} 2*t*s"),
+                {"d": wetted, "t": thickness, "s": SERVICE_FLAG},
+                "deposit",
+                key,
+            )
+        self.scope.assume(
+            f"{layers[0].name}/narrows",
+            f"The deposit moves the {side} surface that the fluid touches; the"
+            " film is referred to the metal.",
+            "narrows is answered by yes",
+            layers[0].name,
+        )
         return {**shape.dimensions, key: wetted}, (wetted, metal)
 
     def _narrowing(self, side: str) -> list[Term]:
@@ -586,31 +838,55 @@ class _Builder:
         asked |= asked_symbols(film)
         for key, value in term.with_values.items():
             if key not in asked:
-                self.collector.add("key-unknown", value.place, f"`{shown(key)}` is asked for by no card of `{term.name}`",
-                                   found=shown(key), expected=", ".join(sorted(need.symbol for need in situation.needs)),
-                                   nearest=nearest_names(key, sorted(asked)))
+                self.collector.add(
+                    "key-unknown",
+                    value.place,
+                    f"`{shown(key)}` is asked for by no card of `{term.name}`",
+                    found=shown(key),
+                    expected=", ".join(sorted(need.symbol for need in situation.needs)),
+                    nearest=nearest_names(key, sorted(asked)),
+                )
 
     def _stated_film(self, term: Term, shape: Shape, surface: int) -> Branch | None:
         scope = self.scope
         stated_on = self._surface(term, shape, surface)
         if stated_on is None:
             return None
-        coefficient = scope.value(term.values.get("coefficient"), "film coefficient", term.name, "coefficient")
+        coefficient = scope.value(
+            term.values.get("coefficient"), "film coefficient", term.name, "coefficient"
+        )
         if not coefficient and "resistance" in term.values:
             resistance = scope.value(term.values["resistance"], "area resistance", term.name, "resistance")
             if resistance:
-                coefficient = scope.relation_step(f"{term.name}/stated/h", "h", "film coefficient", term.name,
-                                                  parse_expression("1/R"), {"R": resistance}, "stated", "film coefficient")
+                coefficient = scope.relation_step(
+                    f"{term.name}/stated/h",
+                    "h",
+                    "film coefficient",
+                    term.name,
+                    parse_expression("1/R"),
+                    {"R": resistance},
+                    "stated",
+                    "film coefficient",
+                )
         if not coefficient:
             return None
         if term.scales_with is not None:
             coefficient = self._scaled(term, coefficient)
         if stated_on != surface:
             coefficient = scope.relation_step(
-                f"{term.name}/referred/h", "h", f"film coefficient on {shape.surfaces[surface].name}", term.name,
+                f"{term.name}/referred/h",
+                "h",
+                f"film coefficient on {shape.surfaces[surface].name}",
+                term.name,
                 parse_expression("h_stated*A_stated/A"),
-                {"h_stated": coefficient, "A_stated": shape.surfaces[stated_on].area, "A": shape.surfaces[surface].area},
-                "referred from the stated surface", "film coefficient")
+                {
+                    "h_stated": coefficient,
+                    "A_stated": shape.surfaces[stated_on].area,
+                    "A": shape.surfaces[surface].area,
+                },
+                "referred from the stated surface",
+                "film coefficient",
+            )
         bulk = scope.value(term.values.get("temperature"), "temperature", term.name, "temperature")
         stream = self._stream_of(term)
         if not bulk and stream is not None:
@@ -619,7 +895,9 @@ class _Builder:
         film = FilmScope(scope, self.library, term, term.name, shape.dimensions, stream)
         steps = film.ancestors([coefficient])
         candidate = Candidate(STATED, steps, coefficient, checks, "stated in the calculation file", False, ())
-        return Branch(term.name, "stated", bulk, (candidate,), is_forced=True, stream=stream.name if stream else "")
+        return Branch(
+            term.name, "stated", bulk, (candidate,), is_forced=True, stream=stream.name if stream else ""
+        )
 
     def _scaled(self, term: Term, coefficient: str) -> str:
         assert term.scales_with is not None
@@ -627,27 +905,58 @@ class _Builder:
         if inputs is None:
             return coefficient
         try:
-            dim = dimension(term.scales_with, {symbol: self.scope.dimensions[name] for symbol, name in inputs.items()})
+            dim = dimension(
+                term.scales_with, {symbol: self.scope.dimensions[name] for symbol, name in inputs.items()}
+            )
             if dim != DIMENSIONLESS:
-                self.collector.add("dimension-slip", term.place_of("scales with"), "`scales with` is a plain factor")
+                self.collector.add(
+                    "dimension-slip", term.place_of("scales with"), "`scales with` is a plain factor"
+                )
         except RelationFault as error:
             self.collector.add("dimension-slip", term.place_of("scales with"), error.message)
             return coefficient
-        factor = self.scope.relation_step(f"{term.name}/factor", "x", "factor on the stated coefficient", term.name,
-                                          term.scales_with, inputs, "calculation file", "ratio")
-        return self.scope.relation_step(f"{term.name}/scaled/h", "h", "film coefficient", term.name,
-                                        parse_expression("h_stated*x"), {"h_stated": coefficient, "x": factor},
-                                        "stated and scaled", "film coefficient")
+        factor = self.scope.relation_step(
+            f"{term.name}/factor",
+            "x",
+            "factor on the stated coefficient",
+            term.name,
+            term.scales_with,
+            inputs,
+            "calculation file",
+            "ratio",
+        )
+        return self.scope.relation_step(
+            f"{term.name}/scaled/h",
+            "h",
+            "film coefficient",
+            term.name,
+            parse_expression("h_stated*x"),
+            {"h_stated": coefficient, "x": factor},
+            "stated and scaled",
+            "film coefficient",
+        )
 
     def _bind_givens(self, relation: Relation, term: Term, key: str) -> dict[str, str] | None:
         inputs = {}
         for symbol in relation.symbols:
-            name = next((f"{kind}/{symbol}" for kind in ("given", "derived")
-                         if f"{kind}/{symbol}" in self.scope.dimensions), "")
+            name = next(
+                (
+                    f"{kind}/{symbol}"
+                    for kind in ("given", "derived")
+                    if f"{kind}/{symbol}" in self.scope.dimensions
+                ),
+                "",
+            )
             if not name:
                 known = [*self.calculation.givens, *self.calculation.derived]
-                self.collector.add("symbol-unknown", term.place_of(key), f"`{shown(symbol)}` is neither a given nor derived",
-                                   found=shown(symbol), expected=", ".join(known), nearest=nearest_names(symbol, known))
+                self.collector.add(
+                    "symbol-unknown",
+                    term.place_of(key),
+                    f"`{shown(symbol)}` is neither a given nor derived",
+                    found=shown(symbol),
+                    expected=", ".join(known),
+                    nearest=nearest_names(symbol, known),
+                )
                 return None
             self.scope.used_in.setdefault(symbol, []).append(f"{term.name}, {key}")
             inputs[symbol] = name
@@ -660,38 +969,67 @@ class _Builder:
         low, high = term.holds_for
         name = self._held_figure(term, low.source)
         if not name:
-            self.collector.add("symbol-unknown", low.place, f"`{shown(low.source)}` is neither a given nor derived",
-                               found=shown(low.source), expected=", ".join((*self.calculation.givens, "flow", "temperature")),
-                               nearest=nearest_names(low.source, self.calculation.givens))
+            self.collector.add(
+                "symbol-unknown",
+                low.place,
+                f"`{shown(low.source)}` is neither a given nor derived",
+                found=shown(low.source),
+                expected=", ".join((*self.calculation.givens, "flow", "temperature")),
+                nearest=nearest_names(low.source, self.calculation.givens),
+            )
             return ()
         bounds = {}
         for key, value in (("low", low), ("high", high)):
             if value.quantity is None or value.quantity.dimension != self.scope.dimensions[name]:
-                self.collector.add("unit-dimension", value.place, "the range has another dimension than its figure",
-                                   found=value.text)
+                self.collector.add(
+                    "unit-dimension",
+                    value.place,
+                    "the range has another dimension than its figure",
+                    found=value.text,
+                )
                 return ()
-            bounds[key] = self.scope.constant(f"{term.name}/holds for {key}", value.quantity.value, value.quantity.dimension)
-        limit = Limit("holds for", parse_expression("low <= x <= high"), "range",
-                      f"the stated value holds for {low.source} {low.text} to {high.text}", "calculation file", "published",
-                      term.place)
-        return (ChainCheck(f"{term.name} / stated / holds for", term.name, "stated", limit, {"x": name, **bounds}),)
+            bounds[key] = self.scope.constant(
+                f"{term.name}/holds for {key}", value.quantity.value, value.quantity.dimension
+            )
+        limit = Limit(
+            "holds for",
+            parse_expression("low <= x <= high"),
+            "range",
+            f"the stated value holds for {low.source} {low.text} to {high.text}",
+            "calculation file",
+            "published",
+            term.place,
+        )
+        return (
+            ChainCheck(
+                f"{term.name} / stated / holds for", term.name, "stated", limit, {"x": name, **bounds}
+            ),
+        )
 
     def _held_figure(self, term: Term, key: str) -> str:
         stream = self.streams.get(term.texts.get("stream", ""))
         if stream is not None and key in ("flow", "temperature", "pressure"):
             return getattr(stream, key)
-        name = next((f"{kind}/{key}" for kind in ("given", "derived") if f"{kind}/{key}" in self.scope.dimensions), "")
+        name = next(
+            (f"{kind}/{key}" for kind in ("given", "derived") if f"{kind}/{key}" in self.scope.dimensions), ""
+        )
         if name:
             self.scope.used_in.setdefault(key, []).append(f"{term.name}, holds for")
         return name
 
     def _radiation(self, term: Term, group: str, shape: Shape) -> Branch | None:
         emissivity = self.scope.value(term.values.get("emissivity"), "emissivity", term.name, "emissivity")
-        surroundings = self.scope.value(term.values.get("surroundings"), "temperature", term.name, "surroundings")
+        surroundings = self.scope.value(
+            term.values.get("surroundings"), "temperature", term.name, "surroundings"
+        )
         for key in ("emissivity", "surroundings"):
             if key not in term.values:
-                self.collector.add("key-missing", term.place, f"the radiation `{term.name}` lacks `{key}`",
-                                   expected="emissivity and surroundings")
+                self.collector.add(
+                    "key-missing",
+                    term.place,
+                    f"the radiation `{term.name}` lacks `{key}`",
+                    expected="emissivity and surroundings",
+                )
         if not emissivity or not surroundings:
             return None
         figures = {"emissivity": emissivity, "temperature": surroundings}
@@ -713,23 +1051,48 @@ class _Builder:
         for group in groups:
             if not group.bulk and moving:
                 term = next(term for term in self.calculation.resistances if term.name == group.name)
-                self.collector.add("temperature-missing", term.place, f"`{group.name}` has no bulk temperature",
-                                   found=f"`{moving[0].name}` needs the temperature of its surface",
-                                   expected="temperature: … or stream: … on the term")
+                self.collector.add(
+                    "temperature-missing",
+                    term.place,
+                    f"`{group.name}` has no bulk temperature",
+                    found=f"`{moving[0].name}` needs the temperature of its surface",
+                    expected="temperature: … or stream: … on the term",
+                )
 
 
 STATED = Method(
-    id="stated", title="Stated coefficient", gives="h", closes_on="nothing", properties_at="", needs=(), constants={},
-    uses=(), tables={}, lines=(), limits=(), accuracy=None, assumes=(), family="stated", sources=(), check_points=(),
-    state=None, notes=(), house=False, where=None,  # type: ignore[arg-type]
+    id="stated",
+    title="Stated coefficient",
+    gives="h",
+    closes_on="nothing",
+    properties_at="",
+    needs=(),
+    constants={},
+    uses=(),
+    tables={},
+    lines=(),
+    limits=(),
+    accuracy=None,
+    assumes=(),
+    family="stated",
+    sources=(),
+    check_points=(),
+    state=State("checked", "0.1"),
+    notes=(),
+    house=False,
+    where=Place("calculation file"),
 )
 
 
 def _steps_of(element: Element) -> tuple[ChainStep, ...]:
     if isinstance(element, Layer):
         return element.steps
-    films = tuple(step for branch in element.branches for candidate in (*branch.candidates, *branch.alternatives)
-                  for step in (*candidate.steps, *branch.choice_steps))
+    films = tuple(
+        step
+        for branch in element.branches
+        for candidate in (*branch.candidates, *branch.alternatives)
+        for step in (*candidate.steps, *branch.choice_steps)
+    )
     drops = tuple(branch.pressure_drop for branch in element.branches if branch.pressure_drop is not None)
     return (*films, *(step for drop in drops for step in drop.steps))
 
@@ -744,8 +1107,9 @@ def _kind_of_dimension(dim: tuple, reading: str) -> QuantityKind:
     return _unnamed("x", dim)
 
 
-def lay_out_circuit(scope: Scope, elements: tuple[Element, ...], shape: Shape, basis: int, streams: dict[str, StreamState]
-                    ) -> tuple[tuple[ChainStep, ...], dict[str, str]]:
+def lay_out_circuit(
+    scope: Scope, elements: tuple[Element, ...], shape: Shape, basis: int, streams: dict[str, StreamState]
+) -> tuple[tuple[ChainStep, ...], dict[str, str]]:
     """The steps from film coefficients and resistances to U on every surface, and the names of results."""
     from calcbook.chain.circuit import Circuit
 

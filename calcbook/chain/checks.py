@@ -13,30 +13,61 @@ from calcbook.chain.outcome import CheckResult
 from calcbook.chain.solve import Solution
 from calcbook.chain.types import Chain, ChainCheck
 from calcbook.faults import Collector, nearest_names, shown
-from calcbook.formulas import Compare, Node, Number, Symbol, dimension, evaluate, number_text, parse_number, write
+from calcbook.formulas import (
+    Compare,
+    Node,
+    Number,
+    Symbol,
+    dimension,
+    evaluate,
+    number_text,
+    parse_number,
+    write,
+)
 from calcbook.formulas.nodes import CONSTANTS
 from calcbook.quantities import DIMENSIONLESS, QuantityFault, read_any, si_unit, unit_display
 
 OPERATORS = {">=": "≥", "<=": "≤", ">": ">", "<": "<", "==": "=", "!=": "≠"}
 
 
-def evaluate_check(check: ChainCheck, solution: Solution, case: str, dimensions: Mapping[str, tuple]) -> CheckResult:
+def evaluate_check(
+    check: ChainCheck, solution: Solution, case: str, dimensions: Mapping[str, tuple]
+) -> CheckResult:
     """One limit in one condition of a single record."""
     values = solution.values
     arguments = {symbol: values[bound] for symbol, bound in check.inputs.items()}
-    unknown = any(not np.all(np.isfinite(np.asarray(value, dtype=float))) for value in arguments.values()
-                  if isinstance(value, np.ndarray))
+    unknown = any(
+        not np.all(np.isfinite(np.asarray(value, dtype=float)))
+        for value in arguments.values()
+        if isinstance(value, np.ndarray)
+    )
     state = "not evaluable"
     if not all(_counts(one.relation, one.inputs, values) for one in check.counts_when):
         state = "not counting"
     elif not unknown:
         state = "within" if bool(evaluate(check.limit.that, arguments)) else "outside"
     local = {symbol: dimensions.get(bound, DIMENSIONLESS) for symbol, bound in check.inputs.items()}
-    figure, limit, value, unit = _figure_and_limit(check.limit.that.tree, arguments, local, state == "not evaluable")
+    figure, limit, value, unit = _figure_and_limit(
+        check.limit.that.tree, arguments, local, state == "not evaluable"
+    )
     figure, limit = _in_words(check, figure, limit, value)
-    return CheckResult(check.id, check.owner, check.card, solution.condition, case, write(check.limit.that), figure,
-                       limit, value, unit, check.limit.level, state, check.limit.because, check.limit.source,
-                       check.limit.standing)
+    return CheckResult(
+        check.id,
+        check.owner,
+        check.card,
+        solution.condition,
+        case,
+        write(check.limit.that),
+        figure,
+        limit,
+        value,
+        unit,
+        check.limit.level,
+        state,
+        check.limit.because,
+        check.limit.source,
+        check.limit.standing,
+    )
 
 
 def _in_words(check: ChainCheck, figure: str, limit: str, value: float) -> tuple[str, str]:
@@ -57,8 +88,9 @@ def _counts(relation, inputs: Mapping[str, str], values: Mapping[str, np.ndarray
     return bool(evaluate(relation, {symbol: values[bound] for symbol, bound in inputs.items()}))
 
 
-def _figure_and_limit(tree: Node, arguments: Mapping[str, np.ndarray], dims: Mapping[str, tuple], unknown: bool
-                      ) -> tuple[str, str, float, str]:
+def _figure_and_limit(
+    tree: Node, arguments: Mapping[str, np.ndarray], dims: Mapping[str, tuple], unknown: bool
+) -> tuple[str, str, float, str]:
     """The checked figure and its limit as text, from the comparison itself."""
     if not isinstance(tree, Compare):
         return write(tree), "", math.nan, ""
@@ -75,8 +107,14 @@ def _figure_and_limit(tree: Node, arguments: Mapping[str, np.ndarray], dims: Map
     return figure, _limit_text(tree, operands, place, arguments, dims, tuple(numbers)), numbers[place], unit
 
 
-def _limit_text(tree: Compare, operands: list[Node], place: int, arguments: Mapping[str, np.ndarray],
-                dims: Mapping[str, tuple], numbers: tuple[float, ...]) -> str:
+def _limit_text(
+    tree: Compare,
+    operands: list[Node],
+    place: int,
+    arguments: Mapping[str, np.ndarray],
+    dims: Mapping[str, tuple],
+    numbers: tuple[float, ...],
+) -> str:
     def text(index: int) -> str:
         operand = operands[index]
         if isinstance(operand, Number):
@@ -96,7 +134,11 @@ def _limit_text(tree: Compare, operands: list[Node], place: int, arguments: Mapp
 
 def plain_number(value: float) -> str:
     """A figure of a card as it is, in groups of three where it is long: 5000000.0 as 5 000 000."""
-    return number_text(value, 15) if value != int(value) else number_text(value, max(1, len(str(abs(int(value))))))
+    return (
+        number_text(value, 15)
+        if value != int(value)
+        else number_text(value, max(1, len(str(abs(int(value))))))
+    )
 
 
 def _unit(unit: str) -> str:
@@ -124,7 +166,9 @@ def apart(value: float, others: tuple[float, ...], digits: int = 5) -> str:
 # --- acceptance by the engineer ---------------------------------------------------------------------
 
 
-def apply_acceptances(chain: Chain, results: tuple[CheckResult, ...], collector: Collector) -> tuple[CheckResult, ...]:
+def apply_acceptances(
+    chain: Chain, results: tuple[CheckResult, ...], collector: Collector
+) -> tuple[CheckResult, ...]:
     """Outside or not evaluable range checks that the file accepts, with its bound and reason.
 
     Codes: accept-unknown for an id that matches no check, unit-dimension for a bound of another quantity.
@@ -133,12 +177,21 @@ def apply_acceptances(chain: Chain, results: tuple[CheckResult, ...], collector:
     cases = {result.case for result in results}
     for acceptance in chain.calculation.accept:
         if acceptance.check not in known:
-            collector.add("accept-unknown", acceptance.place, f"no check is called `{shown(acceptance.check)}`",
-                          found=shown(acceptance.check), expected="the id of a check in the record's validity table",
-                          nearest=nearest_names(acceptance.check, known))
+            collector.add(
+                "accept-unknown",
+                acceptance.place,
+                f"no check is called `{shown(acceptance.check)}`",
+                found=shown(acceptance.check),
+                expected="the id of a check in the record's validity table",
+                nearest=nearest_names(acceptance.check, known),
+            )
         if acceptance.within not in ("all", "clean", "service", *cases):
-            collector.add("accept-unknown", acceptance.place, f"`in: {shown(acceptance.within)}` is no condition or case",
-                          expected=", ".join(("all", "clean", "service", *(case for case in cases if case))))
+            collector.add(
+                "accept-unknown",
+                acceptance.place,
+                f"`in: {shown(acceptance.within)}` is no condition or case",
+                expected=", ".join(("all", "clean", "service", *(case for case in cases if case))),
+            )
     return tuple(_accepted(chain, result, collector) for result in results)
 
 
@@ -149,14 +202,17 @@ def _accepted(chain: Chain, result: CheckResult, collector: Collector) -> CheckR
         bound = _bound(acceptance, result, collector)
         if bound is None:
             return result
-        words = f"{acceptance.because} ({acceptance.direction} {acceptance.bound.text if acceptance.bound else ''};" \
-                f" {acceptance.by}, {acceptance.date})"
+        words = (
+            f"{acceptance.because} ({acceptance.direction} {acceptance.bound.text if acceptance.bound else ''};"
+            f" {acceptance.by}, {acceptance.date})"
+        )
         if result.state == "within":
             return replace(result, accepted=f"accepted though within: {words}")
         if result.level == "stop" or result.state not in ("outside", "not evaluable"):
             return result
-        inside = math.isnan(result.value) or (result.value >= bound if acceptance.direction == "down to"
-                                              else result.value <= bound)
+        inside = math.isnan(result.value) or (
+            result.value >= bound if acceptance.direction == "down to" else result.value <= bound
+        )
         if inside:
             return replace(result, state="accepted", accepted=words)
         return replace(result, accepted=f"beyond the accepted bound: {words}")
@@ -170,11 +226,21 @@ def _bound(acceptance: Acceptance, result: CheckResult, collector: Collector) ->
     try:
         quantity = value.quantity or read_any(value.text)
     except QuantityFault:
-        collector.add("number-unreadable", value.place, "the bound is no figure", found=shown(value.text),
-                      expected=f"a figure in {result.unit or '1'}")
+        collector.add(
+            "number-unreadable",
+            value.place,
+            "the bound is no figure",
+            found=shown(value.text),
+            expected=f"a figure in {result.unit or '1'}",
+        )
         return None
     if unit_display(si_unit(quantity.dimension)) != result.unit:
-        collector.add("unit-dimension", value.place, "the bound has another dimension than the checked figure",
-                      found=value.text, expected=result.unit)
+        collector.add(
+            "unit-dimension",
+            value.place,
+            "the bound has another dimension than the checked figure",
+            found=value.text,
+            expected=result.unit,
+        )
         return None
     return quantity.value

@@ -14,8 +14,14 @@ from calcbook.library import vocabulary
 class Circuit:
     """Lays out the circuit steps of one chain."""
 
-    def __init__(self, scope: Scope, elements: tuple[Element, ...], shape: Shape, basis: int,
-                 streams: Mapping[str, StreamState]):
+    def __init__(
+        self,
+        scope: Scope,
+        elements: tuple[Element, ...],
+        shape: Shape,
+        basis: int,
+        streams: Mapping[str, StreamState],
+    ):
         self.streams = streams
         self.scope = scope
         self.elements = elements
@@ -35,26 +41,55 @@ class Circuit:
         """The steps in order, and result names with the ids that hold them."""
         referred = [self._referred(number, element) for number, element in enumerate(self.elements, 1)]
         symbols = {f"R_{number}": name for number, name in enumerate(referred, 1)}
-        total = self._step("R", "R_tot", f"total resistance on {self._basis_name}", " + ".join(symbols), symbols,
-                           "terms in series", "area resistance")
-        coefficient = self._step("U", f"U_{self.basis_mark}", f"overall coefficient on {self._basis_name}", "1/R_tot",
-                                 {"R_tot": total}, "terms in series", "overall coefficient")
+        total = self._step(
+            "R",
+            "R_tot",
+            f"total resistance on {self._basis_name}",
+            " + ".join(symbols),
+            symbols,
+            "terms in series",
+            "area resistance",
+        )
+        coefficient = self._step(
+            "U",
+            f"U_{self.basis_mark}",
+            f"overall coefficient on {self._basis_name}",
+            "1/R_tot",
+            {"R_tot": total},
+            "terms in series",
+            "overall coefficient",
+        )
         self.results |= {"U": coefficient, "R total": total}
         area = self.shape.surfaces[self.basis].area
         for index, surface in enumerate(self.shape.surfaces):
             name = coefficient
             if index != self.basis and surface.area != area:
-                name = self._step(f"U on {surface.name}", f"U_{self._mark(index)}", f"overall coefficient on {surface.name}",
-                                  f"U_{self.basis_mark}*A_{self.basis_mark}/A_{self._mark(index)}",
-                                  {f"U_{self.basis_mark}": coefficient, f"A_{self.basis_mark}": area,
-                                   f"A_{self._mark(index)}": surface.area}, "areas", "overall coefficient")
+                name = self._step(
+                    f"U on {surface.name}",
+                    f"U_{self._mark(index)}",
+                    f"overall coefficient on {surface.name}",
+                    f"U_{self.basis_mark}*A_{self.basis_mark}/A_{self._mark(index)}",
+                    {
+                        f"U_{self.basis_mark}": coefficient,
+                        f"A_{self.basis_mark}": area,
+                        f"A_{self._mark(index)}": surface.area,
+                    },
+                    "areas",
+                    "overall coefficient",
+                )
             self.results[f"U on {surface.name}"] = name
         if self.shape.finned_side:
             bare = self.shape.surfaces[self.shape.bare(self.shape.finned_side)]
             self.results["U on bare"] = self.results[f"U on {bare.name}"]
-        self.results["UA"] = self._step("UA", "UA", "conductance", f"U_{self.basis_mark}*A_{self.basis_mark}",
-                                        {f"U_{self.basis_mark}": coefficient, f"A_{self.basis_mark}": area}, "circuit",
-                                        "conductance")
+        self.results["UA"] = self._step(
+            "UA",
+            "UA",
+            "conductance",
+            f"U_{self.basis_mark}*A_{self.basis_mark}",
+            {f"U_{self.basis_mark}": coefficient, f"A_{self.basis_mark}": area},
+            "circuit",
+            "conductance",
+        )
         self._heat_flow(coefficient)
         self._root_temperatures()
         steps = tuple(step for name, step in self.scope.steps.items() if name not in self.before)
@@ -66,12 +101,25 @@ class Circuit:
         if not first.bulk or not last.bulk:
             return
         mark = self.basis_mark
-        flux = self._step("q", f"q_{mark}", f"heat flux on {self._basis_name}", f"U_{mark}*(T_in - T_out)",
-                          {f"U_{mark}": coefficient, "T_in": first.bulk, "T_out": last.bulk}, "circuit", "heat flux")
+        flux = self._step(
+            "q",
+            f"q_{mark}",
+            f"heat flux on {self._basis_name}",
+            f"U_{mark}*(T_in - T_out)",
+            {f"U_{mark}": coefficient, "T_in": first.bulk, "T_out": last.bulk},
+            "circuit",
+            "heat flux",
+        )
         self.results["heat flux"] = flux
-        self.results["heat flow"] = self._step("Q", "Q", "heat flow, inside to outside", f"q_{mark}*A_{mark}",
-                                               {f"q_{mark}": flux, f"A_{mark}": self.shape.surfaces[self.basis].area},
-                                               "circuit", "heat flow")
+        self.results["heat flow"] = self._step(
+            "Q",
+            "Q",
+            "heat flow, inside to outside",
+            f"q_{mark}*A_{mark}",
+            {f"q_{mark}": flux, f"A_{mark}": self.shape.surfaces[self.basis].area},
+            "circuit",
+            "heat flow",
+        )
 
         self._implied_changes()
 
@@ -87,13 +135,24 @@ class Circuit:
                 if branch.kind != "film" or stream is None or not stream.mass_flow or stream.is_saturated:
                     continue
                 capacity = self.scope.step(
-                    f"circuit/cp {branch.stream}", "cp", f"heat capacity of {branch.stream}", "circuit",
-                    stream.operation("heat capacity"), stream.state_inputs(stream.temperature), stream.fluid_name,
-                    vocabulary()["heat capacity"])
+                    f"circuit/cp {branch.stream}",
+                    "cp",
+                    f"heat capacity of {branch.stream}",
+                    "circuit",
+                    stream.operation("heat capacity"),
+                    stream.state_inputs(stream.temperature),
+                    stream.fluid_name,
+                    vocabulary()["heat capacity"],
+                )
                 self.results[f"dT {branch.stream}"] = self._step(
-                    f"dT {branch.stream}", "dT", f"temperature change of {branch.stream} that Q implies", "abs(Q)/(m*cp)",
-                    {"Q": self.results["heat flow"], "m": stream.mass_flow, "cp": capacity}, "heat balance of the stream",
-                    "temperature difference")
+                    f"dT {branch.stream}",
+                    "dT",
+                    f"temperature change of {branch.stream} that Q implies",
+                    "abs(Q)/(m*cp)",
+                    {"Q": self.results["heat flow"], "m": stream.mass_flow, "cp": capacity},
+                    "heat balance of the stream",
+                    "temperature difference",
+                )
 
     def _root_temperatures(self) -> None:
         """Where a film has fins, its surface temperature at their root: there it lies furthest from the bulk."""
@@ -104,9 +163,14 @@ class Circuit:
             assert isinstance(group, Group)
             if self.results.get("heat flux"):
                 self.results[f"T root {group.name}"] = self._step(
-                    f"T root {group.name}", "T_r", f"surface temperature of {group.name} at the root of the fins",
+                    f"T root {group.name}",
+                    "T_r",
+                    f"surface temperature of {group.name} at the root of the fins",
                     "T_b + (T_s - T_b)/eta_o",
-                    {"T_b": group.bulk, "T_s": group.surface_temperature, "eta_o": fins.efficiency}, "fins", "temperature")
+                    {"T_b": group.bulk, "T_s": group.surface_temperature, "eta_o": fins.efficiency},
+                    "fins",
+                    "temperature",
+                )
 
     @property
     def _basis_name(self) -> str:
@@ -121,9 +185,20 @@ class Circuit:
             text, inputs = "R", {"R": own}
         else:
             text = f"R*A_{self.basis_mark}/A_{self._mark(element.surface)}"
-            inputs = {"R": own, f"A_{self.basis_mark}": basis.area, f"A_{self._mark(element.surface)}": surface.area}
-        name = self._step(f"R {element.name}", f"R_{number}", f"{element.name} on {self._basis_name}", text, inputs,
-                          "areas", "area resistance")
+            inputs = {
+                "R": own,
+                f"A_{self.basis_mark}": basis.area,
+                f"A_{self._mark(element.surface)}": surface.area,
+            }
+        name = self._step(
+            f"R {element.name}",
+            f"R_{number}",
+            f"{element.name} on {self._basis_name}",
+            text,
+            inputs,
+            "areas",
+            "area resistance",
+        )
         self.results[f"R {element.name}"] = name
         return name
 
@@ -133,8 +208,15 @@ class Circuit:
             return element.resistance
         coefficient = self._group_coefficient(element)
         self.results[f"h {element.name}"] = coefficient
-        return self._step(f"R own {element.name}", "R", f"{element.name} on its own area", "1/h", {"h": coefficient},
-                          "film coefficient", "area resistance")
+        return self._step(
+            f"R own {element.name}",
+            "R",
+            f"{element.name} on its own area",
+            "1/h",
+            {"h": coefficient},
+            "film coefficient",
+            "area resistance",
+        )
 
     def _group_coefficient(self, group: Group) -> str:
         """The id of the coefficient of everything side by side, for the surface-to-fluid difference."""
@@ -146,18 +228,32 @@ class Circuit:
                 parts[f"h_{index}"] = held
                 continue
             parts[f"h_{index}"] = self._step(
-                f"h {branch.name}", f"h_{index}", f"{branch.name}, for the surface-to-fluid difference",
+                f"h {branch.name}",
+                f"h_{index}",
+                f"{branch.name}, for the surface-to-fluid difference",
                 "h*(T_s - T_sur)/(T_s - T_b)",
                 {"h": held, "T_s": group.surface_temperature, "T_sur": branch.reference, "T_b": group.bulk},
-                "same heat flow", "film coefficient")
+                "same heat flow",
+                "film coefficient",
+            )
         if len(parts) == 1:
             return next(iter(parts.values()))
-        return self._step(f"h {group.name}", "h", f"{group.name}, side by side", " + ".join(parts), parts,
-                          "branches side by side", "film coefficient")
+        return self._step(
+            f"h {group.name}",
+            "h",
+            f"{group.name}, side by side",
+            " + ".join(parts),
+            parts,
+            "branches side by side",
+            "film coefficient",
+        )
 
-    def _step(self, key: str, symbol: str, title: str, text: str, inputs: dict[str, str], basis: str, kind: str) -> str:
-        return self.scope.relation_step(f"circuit/{key}", symbol, title, "circuit", parse_expression(text), inputs, basis,
-                                        kind)
+    def _step(
+        self, key: str, symbol: str, title: str, text: str, inputs: dict[str, str], basis: str, kind: str
+    ) -> str:
+        return self.scope.relation_step(
+            f"circuit/{key}", symbol, title, "circuit", parse_expression(text), inputs, basis, kind
+        )
 
 
 def branch_coefficient(group: Group, branch: str) -> str:

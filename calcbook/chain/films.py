@@ -82,13 +82,26 @@ class FilmScope:
         if place in ("saturated liquid", "saturated vapour"):
             return self.saturation()
         if place == "liquid film":
-            return self.scope.relation_step(f"{self.owner}/liquid film/T", "T_lf", "liquid film temperature", self.owner,
-                                            parse_expression("(T_s + T_sat)/2"),
-                                            {"T_s": self.surface, "T_sat": self.saturation()},
-                                            "mean of surface and saturation", "temperature")
-        return self.scope.relation_step(f"{self.owner}/film/T", "T_f", "film temperature", self.owner,
-                                        parse_expression("(T_s + T_b)/2"), {"T_s": self.surface, "T_b": self.bulk},
-                                        "mean of surface and bulk", "temperature")
+            return self.scope.relation_step(
+                f"{self.owner}/liquid film/T",
+                "T_lf",
+                "liquid film temperature",
+                self.owner,
+                parse_expression("(T_s + T_sat)/2"),
+                {"T_s": self.surface, "T_sat": self.saturation()},
+                "mean of surface and saturation",
+                "temperature",
+            )
+        return self.scope.relation_step(
+            f"{self.owner}/film/T",
+            "T_f",
+            "film temperature",
+            self.owner,
+            parse_expression("(T_s + T_b)/2"),
+            {"T_s": self.surface, "T_b": self.bulk},
+            "mean of surface and bulk",
+            "temperature",
+        )
 
     def property(self, name: str, place: str) -> str:
         """The id of a property of the stream at a place."""
@@ -102,14 +115,24 @@ class FilmScope:
             self._fault_property(name)
             return ""
         if place in SATURATED_SIDES:
-            return self.on_saturation(step, name, f"{symbol}_{PLACE_MARKS[place]}", f"{name} of {place}", place)
+            return self.on_saturation(
+                step, name, f"{symbol}_{PLACE_MARKS[place]}", f"{name} of {place}", place
+            )
         inputs = stream.state_inputs(self.temperature(place))
         if place != "bulk":
             inputs["liquid"] = self.flag("fluid liquid")
         shown_symbol = symbol if place == "bulk" else f"{symbol}_{PLACE_MARKS[place]}"
         title = name if place == "bulk" else f"{name} at {place} temperature"
-        return self.scope.step(step, shown_symbol, title, self.owner, stream.operation(name, place != "bulk"), inputs,
-                               stream.fluid_name, vocabulary()[name])
+        return self.scope.step(
+            step,
+            shown_symbol,
+            title,
+            self.owner,
+            stream.operation(name, place != "bulk"),
+            inputs,
+            stream.fluid_name,
+            vocabulary()[name],
+        )
 
     def _fault_property(self, name: str) -> None:
         """A table or constants without a property that a film asks for: said once per term."""
@@ -118,9 +141,13 @@ class FilmScope:
             return
         self.missing.add(name)
         text = self.stream.fluid.text
-        self.scope.collector.add("property-missing", text.place, f"{text.name} has no {name}, which `{self.owner}` needs",
-                                 found=", ".join(column for column in text.columns if column != "T"),
-                                 expected=f"{name}: ... with its unit")
+        self.scope.collector.add(
+            "property-missing",
+            text.place,
+            f"{text.name} has no {name}, which `{self.owner}` needs",
+            found=", ".join(column for column in text.columns if column != "T"),
+            expected=f"{name}: ... with its unit",
+        )
 
     # -- the saturation line --------------------------------------------------------------------------
 
@@ -132,9 +159,12 @@ class FilmScope:
         if "saturation" not in self.missing:
             self.missing.add("saturation")
             self.scope.collector.add(
-                "stream-not-saturated", self.stream.place, f"`{self.owner}` needs a saturated stream",
+                "stream-not-saturated",
+                self.stream.place,
+                f"`{self.owner}` needs a saturated stream",
                 found=f"stream {self.stream.name} with its own temperature",
-                expected="temperature: saturation with the pressure and phase of a pure fluid")
+                expected="temperature: saturation with the pressure and phase of a pure fluid",
+            )
         return self.scope.unread(vocabulary()["saturation temperature"])
 
     def on_saturation(self, step: str, name: str, symbol: str, title: str, place: str) -> str:
@@ -142,8 +172,16 @@ class FilmScope:
         assert self.stream is not None
         stream, temperature = self.stream, self.temperature(place)
         operation = PropertyOperation(stream.fluid, name, SATURATED_SIDES.get(place, "liquid"), False, False)
-        return self.scope.step(step, symbol, title, self.owner, operation, {"T": temperature}, stream.fluid_name,
-                               vocabulary()[name])
+        return self.scope.step(
+            step,
+            symbol,
+            title,
+            self.owner,
+            operation,
+            {"T": temperature},
+            stream.fluid_name,
+            vocabulary()[name],
+        )
 
     def pressure(self) -> str:
         """The id of the stream's pressure: as stated, or the vapour pressure at its temperature."""
@@ -159,15 +197,28 @@ class FilmScope:
         symbol = SATURATION_FIGURES[name]
         if step in self.scope.steps:
             return step
-        return self.on_saturation(step, name, symbol if own else f"{symbol}_{PLACE_MARKS[place]}",
-                                  name if own else f"{name} at {place} temperature", place)
+        return self.on_saturation(
+            step,
+            name,
+            symbol if own else f"{symbol}_{PLACE_MARKS[place]}",
+            name if own else f"{name} at {place} temperature",
+            place,
+        )
 
     def fixed_figure(self, name: str) -> str:
         """The id of a figure that the fluid has in every state."""
         assert self.stream is not None
         self.saturation()
-        return self.scope.step(f"stream {self.stream.name}/{name}", FIXED_FIGURES[name], name, self.owner,
-                               FixedOperation(self.stream.fluid, name), {}, self.stream.fluid_name, vocabulary()[name])
+        return self.scope.step(
+            f"stream {self.stream.name}/{name}",
+            FIXED_FIGURES[name],
+            name,
+            self.owner,
+            FixedOperation(self.stream.fluid, name),
+            {},
+            self.stream.fluid_name,
+            vocabulary()[name],
+        )
 
     def saturated(self, name: str, place: str) -> str:
         """The id of what only a fluid on its saturation line has; empty for every other quantity."""
@@ -183,8 +234,15 @@ class FilmScope:
             return self.fixed_figure(name)
         if name == "reduced pressure":
             return self.scope.relation_step(
-                f"stream {self.stream.name}/reduced pressure", "p_r", name, self.owner, parse_expression("p/p_c"),
-                {"p": self.pressure(), "p_c": self.fixed_figure("critical pressure")}, "critical pressure", name)
+                f"stream {self.stream.name}/reduced pressure",
+                "p_r",
+                name,
+                self.owner,
+                parse_expression("p/p_c"),
+                {"p": self.pressure(), "p_c": self.fixed_figure("critical pressure")},
+                "critical pressure",
+                name,
+            )
         return ""
 
     def vapour_checks(self) -> tuple[ChainCheck, ...]:
@@ -193,34 +251,74 @@ class FilmScope:
         stated = self.term.values.get("vapour velocity")
         if self.situation.changes_phase != "condensing":
             if stated is not None:
-                self.scope.collector.add("key-unknown", stated.place, f"`{self.owner}` does not condense a vapour",
-                                         found="vapour velocity", expected="a situation that condenses")
+                self.scope.collector.add(
+                    "key-unknown",
+                    stated.place,
+                    f"`{self.owner}` does not condense a vapour",
+                    found="vapour velocity",
+                    expected="a situation that condenses",
+                )
             return ()
         checks = []
         share = self.stream.non_condensable
         if share:
-            checks.append(self._none_of("non-condensable gas", "y_n", share, "range", "mole fraction",
-                                        "the method is for a pure vapour; a few per cent of gas can halve the coefficient"))
+            checks.append(
+                self._none_of(
+                    "non-condensable gas",
+                    "y_n",
+                    share,
+                    "range",
+                    "mole fraction",
+                    "the method is for a pure vapour; a few per cent of gas can halve the coefficient",
+                )
+            )
         else:
-            self.scope.assume(f"{self.owner}/pure", f"The vapour of {self.stream.name} is pure.",
-                              "no non-condensable gas is stated", self.owner)
+            self.scope.assume(
+                f"{self.owner}/pure",
+                f"The vapour of {self.stream.name} is pure.",
+                "no non-condensable gas is stated",
+                self.owner,
+            )
         if self.situation.flow == "forced":
             return tuple(checks)
         speed = self.scope.value(stated, "vapour velocity", self.owner, "vapour velocity")
         if speed:
-            checks.append(self._none_of("vapour at rest", "v_g", speed, "caution", "vapour velocity",
-                                        "the method is for a vapour at rest; its shear thins or piles up the film"))
+            checks.append(
+                self._none_of(
+                    "vapour at rest",
+                    "v_g",
+                    speed,
+                    "caution",
+                    "vapour velocity",
+                    "the method is for a vapour at rest; its shear thins or piles up the film",
+                )
+            )
         else:
-            self.scope.assume(f"{self.owner}/at rest", f"The vapour of {self.stream.name} is at rest.",
-                              "no vapour velocity is stated", self.owner)
+            self.scope.assume(
+                f"{self.owner}/at rest",
+                f"The vapour of {self.stream.name} is at rest.",
+                "no vapour velocity is stated",
+                self.owner,
+            )
         return tuple(checks)
 
-    def _none_of(self, name: str, symbol: str, figure: str, level: str, kind: str, because: str) -> ChainCheck:
+    def _none_of(
+        self, name: str, symbol: str, figure: str, level: str, kind: str, because: str
+    ) -> ChainCheck:
         assert self.situation is not None
         none = self.scope.constant(f"{self.owner}/no {kind}", 0.0, vocabulary()[kind].dimension)
-        limit = Limit(name, parse_expression(f"{symbol} <= none"), level, because, "common practice",
-                      "common practice", self.situation.where)
-        return ChainCheck(f"{self.owner} / vapour / {name}", self.owner, "vapour", limit, {symbol: figure, "none": none})
+        limit = Limit(
+            name,
+            parse_expression(f"{symbol} <= none"),
+            level,
+            because,
+            "common practice",
+            "common practice",
+            self.situation.where,
+        )
+        return ChainCheck(
+            f"{self.owner} / vapour / {name}", self.owner, "vapour", limit, {symbol: figure, "none": none}
+        )
 
     # -- flow and geometry ----------------------------------------------------------------------------
 
@@ -244,9 +342,12 @@ class FilmScope:
         if need.absent is not None:
             name = f"{self.owner}/{need.symbol} absent"
             unit = "" if need.quantity.unit == "1" else f" {unit_display(need.quantity.unit)}"
-            self.scope.assume(f"{self.owner}/{need.symbol}",
-                              f"{need.quantity.name} {need.symbol} is taken as {need.absent}{unit}.",
-                              "nothing is stated", self.owner)
+            self.scope.assume(
+                f"{self.owner}/{need.symbol}",
+                f"{need.quantity.name} {need.symbol} is taken as {need.absent}{unit}.",
+                "nothing is stated",
+                self.owner,
+            )
             return self.scope.constant(name, float(need.absent), need.quantity.dimension)
         return ""
 
@@ -257,16 +358,29 @@ class FilmScope:
             return ""
         try:
             number = choice_number(text, need.one_of)
-            if not _words(need) and text not in need.one_of and number not in [float(item) for item in need.one_of]:
+            if (
+                not _words(need)
+                and text not in need.one_of
+                and number not in [float(item) for item in need.one_of]
+            ):
                 raise ValueError(text)
         except ValueError:
             assert stated is not None
-            self.scope.collector.add("choice-unknown", stated.place, f"`{need.symbol}` cannot be `{shown(text)}`",
-                                     found=shown(text), expected=" | ".join(need.one_of))
+            self.scope.collector.add(
+                "choice-unknown",
+                stated.place,
+                f"`{need.symbol}` cannot be `{shown(text)}`",
+                found=shown(text),
+                expected=" | ".join(need.one_of),
+            )
             return ""
         if stated is None:
-            self.scope.assume(f"{self.owner}/{need.symbol}", f"{need.symbol} is taken as {text}.", "nothing is stated",
-                              self.owner)
+            self.scope.assume(
+                f"{self.owner}/{need.symbol}",
+                f"{need.symbol} is taken as {text}.",
+                "nothing is stated",
+                self.owner,
+            )
         return self.scope.constant(f"{self.owner}/with {need.symbol}", number)
 
     def report_missing(self, need: Need, example: str) -> None:
@@ -275,8 +389,11 @@ class FilmScope:
             return
         self.missing.add(need.symbol)
         self.scope.collector.add(
-            "need-missing", self.term.place, f"`{self.owner}` needs {need.quantity.name} `{need.symbol}`",
-            expected=f"it in the geometry, or with: {{{need.symbol}: {example}}} on the term")
+            "need-missing",
+            self.term.place,
+            f"`{self.owner}` needs {need.quantity.name} `{need.symbol}`",
+            expected=f"it in the geometry, or with: {{{need.symbol}: {example}}} on the term",
+        )
 
     def speed(self) -> str:
         """The id of the stream's speed at this film: as stated, or from its flow and the flow area."""
@@ -288,13 +405,22 @@ class FilmScope:
             self._fault_flow("the stream has no flow", "flow: mass flow, volume flow or speed on the stream")
             return ""
         if self.situation.flow_area is None:
-            self._fault_flow("the situation has no flow area: the flow must be a speed", "flow: 4 m/s on the stream")
+            self._fault_flow(
+                "the situation has no flow area: the flow must be a speed", "flow: 4 m/s on the stream"
+            )
             return ""
         area = self.local_step("flow area", "A_c", "flow area", self.situation.flow_area, "flow area")
         density = self.property("density", "bulk")
-        return self.scope.relation_step(f"{self.owner}/speed", "v", "speed", self.owner, parse_expression("m/(rho*A_c)"),
-                                        {"m": stream.mass_flow, "rho": density, "A_c": area},
-                                        self.situation.id, "speed")
+        return self.scope.relation_step(
+            f"{self.owner}/speed",
+            "v",
+            "speed",
+            self.owner,
+            parse_expression("m/(rho*A_c)"),
+            {"m": stream.mass_flow, "rho": density, "A_c": area},
+            self.situation.id,
+            "speed",
+        )
 
     def flow_of_situation(self, symbol: str) -> str:
         """The id of the stream's mass flow, or of the situation's flow area."""
@@ -309,7 +435,9 @@ class FilmScope:
     def _fault_flow(self, message: str, expected: str) -> None:
         if "flow" not in self.missing:
             self.missing.add("flow")
-            self.scope.collector.add("flow-missing", self.term.place, f"`{self.owner}`: {message}", expected=expected)
+            self.scope.collector.add(
+                "flow-missing", self.term.place, f"`{self.owner}`: {message}", expected=expected
+            )
 
     def local_step(self, key: str, symbol: str, title: str, relation: Relation, kind: str) -> str:
         """A relation of the situation card over its needs."""
@@ -320,14 +448,28 @@ class FilmScope:
         only = relation.text.strip()
         if only in inputs:
             return inputs[only]
-        return self.scope.relation_step(f"{self.owner}/{key}", symbol, title, self.owner, relation, inputs,
-                                        self.situation.id, kind, self.term.place)
+        return self.scope.relation_step(
+            f"{self.owner}/{key}",
+            symbol,
+            title,
+            self.owner,
+            relation,
+            inputs,
+            self.situation.id,
+            kind,
+            self.term.place,
+        )
 
     def length(self) -> str:
         """The id of the characteristic length."""
         assert self.situation is not None
-        return self.local_step("L_c", "L_c", "characteristic length", self.situation.characteristic_length,
-                               "characteristic length")
+        return self.local_step(
+            "L_c",
+            "L_c",
+            "characteristic length",
+            self.situation.characteristic_length,
+            "characteristic length",
+        )
 
     def bind(self, relation: Relation, place: str) -> dict[str, str] | None:
         """The ids of a situation relation's symbols at a place, or None after a fault."""
@@ -353,7 +495,9 @@ class FilmScope:
             return self.flag(f"fluid {symbol}")
         for need in self.situation.needs:
             if symbol in need.one_of:
-                return self.scope.constant(f"word {symbol} of {need.symbol}", float(need.one_of.index(symbol)))
+                return self.scope.constant(
+                    f"word {symbol} of {need.symbol}", float(need.one_of.index(symbol))
+                )
             if need.symbol == symbol:
                 found = self.from_term(need)
                 if not found and not need.one_of:
@@ -365,24 +509,44 @@ class FilmScope:
         if symbol in ("m", "A_c"):
             return self.flow_of_situation(symbol)
         if symbol in ("q", "T_sat", "h_fg"):
-            return {"q": lambda: f"{self.group}/q", "T_sat": self.saturation,
-                    "h_fg": lambda: self.saturation_figure("latent heat", "")}[symbol]()
-        self.scope.collector.add("symbol-unknown", self.situation.where, f"situation {self.situation.id}: `{symbol}`"
-                                 " is neither a need, a group nor a property")
+            return {
+                "q": lambda: f"{self.group}/q",
+                "T_sat": self.saturation,
+                "h_fg": lambda: self.saturation_figure("latent heat", ""),
+            }[symbol]()
+        self.scope.collector.add(
+            "symbol-unknown",
+            self.situation.where,
+            f"situation {self.situation.id}: `{symbol}` is neither a need, a group nor a property",
+        )
         return ""
 
     def flag(self, name: str) -> str:
         """The id of a flag: the fluid is heated, the fluid is a liquid."""
         assert self.stream is not None
         if name == "fluid heated":
-            return self.scope.relation_step(f"{self.owner}/heated", "heated", "fluid heated", self.owner,
-                                            parse_expression("T_s > T_b"), {"T_s": self.surface, "T_b": self.bulk},
-                                            "surface minus bulk of this fluid", "fluid heated")
+            return self.scope.relation_step(
+                f"{self.owner}/heated",
+                "heated",
+                "fluid heated",
+                self.owner,
+                parse_expression("T_s > T_b"),
+                {"T_s": self.surface, "T_b": self.bulk},
+                "surface minus bulk of this fluid",
+                "fluid heated",
+            )
         stream = self.stream
         operation = LiquidOperation(stream.operation("density"))
-        return self.scope.step(f"stream {stream.name}/liquid", "liquid", "fluid liquid", self.owner, operation,
-                               stream.state_inputs(stream.temperature), stream.fluid_name,
-                               vocabulary()["fluid liquid"])
+        return self.scope.step(
+            f"stream {stream.name}/liquid",
+            "liquid",
+            "fluid liquid",
+            self.owner,
+            operation,
+            stream.state_inputs(stream.temperature),
+            stream.fluid_name,
+            vocabulary()["fluid liquid"],
+        )
 
     def group_step(self, name: str, place: str) -> str:
         """The id of a dimensionless group of the situation at a place."""
@@ -397,9 +561,17 @@ class FilmScope:
                 if only in inputs:
                     return inputs[only]
                 title = name if place == "bulk" else f"{name} at {place} temperature"
-                return self.scope.relation_step(f"{self.owner}/{group.symbol}{mark}", f"{group.symbol}{mark}", title,
-                                                self.owner, group.relation, inputs, self.situation.id, name,
-                                                self.term.place)
+                return self.scope.relation_step(
+                    f"{self.owner}/{group.symbol}{mark}",
+                    f"{group.symbol}{mark}",
+                    title,
+                    self.owner,
+                    group.relation,
+                    inputs,
+                    self.situation.id,
+                    name,
+                    self.term.place,
+                )
         return ""
 
     # -- needs of methods -----------------------------------------------------------------------------
@@ -450,7 +622,9 @@ class FilmScope:
         steps = self.ancestors([coefficient])
         checks = self.checks(program, names)
         steps = self.ancestors([coefficient, *(bound for check in checks for bound in check.inputs.values())])
-        return Candidate(card, steps, coefficient, checks, because, program.uses_flag("fluid heated"), program.cards)
+        return Candidate(
+            card, steps, coefficient, checks, because, program.uses_flag("fluid heated"), program.cards
+        )
 
     def bind_needs(self, program: Program) -> dict[str, str] | None:
         """Ids for a program's needs and constants. What only limits ask for may stay unknown (NaN)."""
@@ -466,12 +640,14 @@ class FilmScope:
                 elif item.name in used:
                     self.report_missing(item.need, f"1 {item.need.quantity.unit}")
                     complete = False
-                found = self.scope.constant(f"{self.owner}/{item.need.symbol} not given", float("nan"),
-                                            item.need.quantity.dimension)
+                found = self.scope.constant(
+                    f"{self.owner}/{item.need.symbol} not given", float("nan"), item.need.quantity.dimension
+                )
             names[item.name] = found
         for name, value in program.constants.items():
-            names[name] = self.scope.constant(f"{self.owner}/{program.method.id}/{name}", value,
-                                              program.constant_dimensions[name])
+            names[name] = self.scope.constant(
+                f"{self.owner}/{program.method.id}/{name}", value, program.constant_dimensions[name]
+            )
         return names if complete else None
 
     def lay_out(self, program: Program, names: dict[str, str]) -> None:
@@ -481,8 +657,9 @@ class FilmScope:
             name = self.step_name(program.method.id, step, inputs)
             kind = _kind_of_symbol(step.symbol)
             title = kind.name if kind is not None else step.symbol
-            self.scope.step(name, step.symbol, title, self.owner, step.operation, inputs, step.card, kind,
-                            self.term.place)
+            self.scope.step(
+                name, step.symbol, title, self.owner, step.operation, inputs, step.card, kind, self.term.place
+            )
             names[step.name] = name
 
     def step_name(self, method: str, step: ProgramStep, inputs: Mapping[str, str]) -> str:
@@ -504,15 +681,30 @@ class FilmScope:
         if card.gives == "h":
             return result
         if card.gives != "Nu" or self.situation is None:
-            self.scope.collector.add("method-not-for-film", self.term.place_of("method"),
-                                     f"`{card.id}` gives {card.gives}, no film coefficient",
-                                     expected="a method that gives Nu or h")
+            self.scope.collector.add(
+                "method-not-for-film",
+                self.term.place_of("method"),
+                f"`{card.id}` gives {card.gives}, no film coefficient",
+                expected="a method that gives Nu or h",
+            )
             return ""
-        inputs = {"Nu": result, "lam": self.property("conductivity", card.properties_at), "L_c": self.length()}
+        inputs = {
+            "Nu": result,
+            "lam": self.property("conductivity", card.properties_at),
+            "L_c": self.length(),
+        }
         if not all(inputs.values()):
             return ""
-        coefficient = self.scope.relation_step(f"{self.owner}/{card.id}/h", "h", "film coefficient", self.owner,
-                                               parse_expression("Nu*lam/L_c"), inputs, card.id, "film coefficient")
+        coefficient = self.scope.relation_step(
+            f"{self.owner}/{card.id}/h",
+            "h",
+            "film coefficient",
+            self.owner,
+            parse_expression("Nu*lam/L_c"),
+            inputs,
+            card.id,
+            "film coefficient",
+        )
         return self.referred(card, coefficient)
 
     def referred(self, card: Method, coefficient: str) -> str:
@@ -520,9 +712,16 @@ class FilmScope:
         if self.deposit_surface is None:
             return coefficient
         wetted, metal = self.deposit_surface
-        return self.scope.relation_step(f"{self.owner}/{card.id}/h on metal", "h_m", "film coefficient on the metal surface",
-                                        self.owner, parse_expression("h*d_n/d"),
-                                        {"h": coefficient, "d_n": wetted, "d": metal}, "areas", "film coefficient")
+        return self.scope.relation_step(
+            f"{self.owner}/{card.id}/h on metal",
+            "h_m",
+            "film coefficient on the metal surface",
+            self.owner,
+            parse_expression("h*d_n/d"),
+            {"h": coefficient, "d_n": wetted, "d": metal},
+            "areas",
+            "film coefficient",
+        )
 
     def checks(self, program: Program, names: Mapping[str, str]) -> tuple[ChainCheck, ...]:
         """The limits of a method and of the cards it uses, each with bound inputs."""
@@ -576,20 +775,40 @@ class FilmScope:
             rows.append(ChoiceRow(choice.when, inputs, len(candidates), choice.because))
             candidates.append(candidate)
         steps = self.ancestors([bound for row in rows for bound in row.inputs.values()])
-        return Branch(self.owner, "film", self.bulk, tuple(candidates), steps, tuple(rows), self.situation,
-                      self.stream.name if self.stream else "")
+        return Branch(
+            self.owner,
+            "film",
+            self.bulk,
+            tuple(candidates),
+            steps,
+            tuple(rows),
+            self.situation,
+            self.stream.name if self.stream else "",
+        )
 
     def forced_branch(self, method: str) -> Branch | None:
         """A film whose method the file names."""
         assert self.situation is not None
         if method not in self.situation.methods and not self._is_served(method):
-            self.scope.open(f"{self.owner}/method", "check", f"The method {method} is not one of the situation"
-                            f" {self.situation.id}.")
+            self.scope.open(
+                f"{self.owner}/method",
+                "check",
+                f"The method {method} is not one of the situation {self.situation.id}.",
+            )
         candidate = self.candidate(method, "named in the calculation file")
         if candidate is None:
             return None
-        return Branch(self.owner, "film", self.bulk, (candidate,), (), (), self.situation,
-                      self.stream.name if self.stream else "", True)
+        return Branch(
+            self.owner,
+            "film",
+            self.bulk,
+            (candidate,),
+            (),
+            (),
+            self.situation,
+            self.stream.name if self.stream else "",
+            True,
+        )
 
     def _is_served(self, method: str) -> bool:
         """Whether a book's own method is made for this situation."""
@@ -627,7 +846,14 @@ def _kind_of_symbol(symbol: str):  # type: ignore[no-untyped-def]
     for kind in vocabulary().values():
         if kind.symbol == symbol and symbol in NAMED_GROUPS and kind.dimension == DIMENSIONLESS:
             return kind
-    return next((kind for kind in vocabulary().values() if kind.symbol == symbol and symbol in ("h", "R", "q", "q_chf", "dp")), None)
+    return next(
+        (
+            kind
+            for kind in vocabulary().values()
+            if kind.symbol == symbol and symbol in ("h", "R", "q", "q_chf", "dp")
+        ),
+        None,
+    )
 
 
 def _words(need: Need) -> bool:
@@ -636,4 +862,3 @@ def _words(need: Need) -> bool:
     except ValueError:
         return True
     return False
-

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
+from typing import Any
 
 import numpy as np
 
@@ -11,7 +12,16 @@ from calcbook.chain.checks import apart
 from calcbook.chain.outcome import CheckResult
 from calcbook.chain.roots import other_heat_flows
 from calcbook.chain.solve import Solution
-from calcbook.chain.types import CONDITIONS, SERVICE, Branch, Chain, Group, OpenItem, RunnerAssumption, StreamState
+from calcbook.chain.types import (
+    CONDITIONS,
+    SERVICE,
+    Branch,
+    Chain,
+    Group,
+    OpenItem,
+    RunnerAssumption,
+    StreamState,
+)
 from calcbook.faults import Collector
 from calcbook.formulas import number_text
 from calcbook.library.operations import run
@@ -36,14 +46,20 @@ def stream_findings(chain: Chain, case: str, collector: Collector) -> tuple[Open
     Faults (a liquid that is vapour, two phases, outside the fluid's range) go to the collector with the
     stream's place; what only needs the engineer's eye becomes an open item.
     """
-    values = dict(chain.constants) | chain.case_inputs(case)
+    values: dict[str, Any] = dict(chain.constants) | chain.case_inputs(case)
     run(chain.steps, values)
     _check_surfaces(chain, values, collector)
     _check_directions(chain, values, collector, case)
     items: list[OpenItem] = []
     for state in chain.streams.values():
-        run([step for step in _all_steps(chain) if step.id in (state.temperature, state.pressure, state.fraction)
-             and step.id not in values], values)
+        run(
+            [
+                step
+                for step in _all_steps(chain)
+                if step.id in (state.temperature, state.pressure, state.fraction) and step.id not in values
+            ],
+            values,
+        )
         fluid = _fluid_at(state, values, collector)
         if fluid is None:
             continue
@@ -64,8 +80,11 @@ def stream_findings(chain: Chain, case: str, collector: Collector) -> tuple[Open
 
 def _glide_items(chain: Chain, state: StreamState, temperature: float, case: str) -> list[OpenItem]:
     """An open item for a blend that boils over a range of temperatures under a method for pure fluids."""
-    changes = any(branch.stream == state.name and branch.situation is not None and branch.situation.changes_phase
-                  for group in (chain.inner, chain.outer) for branch in group.branches)
+    changes = any(
+        branch.stream == state.name and branch.situation is not None and branch.situation.changes_phase
+        for group in (chain.inner, chain.outer)
+        for branch in group.branches
+    )
     if not changes or not state.saturation:
         return []
     sides = [state.fluid.state(None, None, phase) for phase in ("liquid", "gas")]
@@ -75,16 +94,28 @@ def _glide_items(chain: Chain, state: StreamState, temperature: float, case: str
         return []
     where = f"case {case}: " if case else ""
     name = f"stream {state.name}/boils over a range" + (f"/{case}" if case else "")
-    return [OpenItem(name, "state", f"{where}Stream {state.name}: {state.fluid.text.name} boils over a range of"
-                     f" {number_text(dew - temperature, 3)} K; the methods are for pure fluids.")]
+    return [
+        OpenItem(
+            name,
+            "state",
+            f"{where}Stream {state.name}: {state.fluid.text.name} boils over a range of"
+            f" {number_text(dew - temperature, 3)} K; the methods are for pure fluids.",
+        )
+    ]
 
 
-def _report_no_saturation(state: StreamState, values: Mapping[str, object], collector: Collector, case: str) -> None:
+def _report_no_saturation(
+    state: StreamState, values: Mapping[str, object], collector: Collector, case: str
+) -> None:
     pressure = float(values[state.pressure])  # type: ignore[arg-type]
     where = f"case {case}: " if case else ""
-    collector.add("saturation-unknown", state.place,
-                  f"{where}stream {state.name}: {state.fluid.text.name} has no saturation temperature at its pressure",
-                  found=f"{number_text(pressure / 1e5, 5)} bar", expected="a pressure between triple and critical point")
+    collector.add(
+        "saturation-unknown",
+        state.place,
+        f"{where}stream {state.name}: {state.fluid.text.name} has no saturation temperature at its pressure",
+        found=f"{number_text(pressure / 1e5, 5)} bar",
+        expected="a pressure between triple and critical point",
+    )
 
 
 def _check_directions(chain: Chain, values: Mapping[str, object], collector: Collector, case: str) -> None:
@@ -95,12 +126,20 @@ def _check_directions(chain: Chain, values: Mapping[str, object], collector: Col
             if not change or branch.reference not in values or opposite.bulk not in values:
                 continue
             own, other = float(values[branch.reference]), float(values[opposite.bulk])  # type: ignore[arg-type]
-            if math.isnan(own) or math.isnan(other) or (own > other if change == "condensing" else own < other):
+            if (
+                math.isnan(own)
+                or math.isnan(other)
+                or (own > other if change == "condensing" else own < other)
+            ):
                 continue
             where = f"case {case}: " if case else ""
-            collector.add("phase-change-direction", chain.streams[branch.stream].place,
-                          f"{where}{branch.name} is {change} at {celsius(own)}", found=f"the other side at {celsius(other)}",
-                          expected=f"the other side {'colder' if change == 'condensing' else 'hotter'}")
+            collector.add(
+                "phase-change-direction",
+                chain.streams[branch.stream].place,
+                f"{where}{branch.name} is {change} at {celsius(own)}",
+                found=f"the other side at {celsius(other)}",
+                expected=f"the other side {'colder' if change == 'condensing' else 'hotter'}",
+            )
 
 
 def _all_steps(chain: Chain):  # type: ignore[no-untyped-def]
@@ -112,29 +151,46 @@ def _all_steps(chain: Chain):  # type: ignore[no-untyped-def]
                     yield from candidate.steps
 
 
-def _fluid_at(state: StreamState, values: Mapping[str, object], collector: Collector) -> FluidAtPressure | None:
+def _fluid_at(
+    state: StreamState, values: Mapping[str, object], collector: Collector
+) -> FluidAtPressure | None:
     pressure = float(values[state.pressure]) if state.pressure else None  # type: ignore[arg-type]
     fraction = float(values[state.fraction]) if state.fraction else None  # type: ignore[arg-type]
     try:
         return state.fluid.state(pressure, fraction, state.phase)
     except PropertyFault as error:
-        collector.add(error.code, state.place, f"stream {state.name}: {error.message}", expected=error.expected,
-                      nearest=error.nearest)
+        collector.add(
+            error.code,
+            state.place,
+            f"stream {state.name}: {error.message}",
+            expected=error.expected,
+            nearest=error.nearest,
+        )
         return None
 
 
 def _check_surfaces(chain: Chain, values: Mapping[str, object], collector: Collector) -> None:
-    place = chain.calculation.geometry.place if chain.calculation.geometry is not None else chain.calculation.place
+    place = (
+        chain.calculation.geometry.place
+        if chain.calculation.geometry is not None
+        else chain.calculation.place
+    )
     for before, after in zip(chain.surfaces, chain.surfaces[1:], strict=False):
         if not after.diameter:
             continue
         inner, outer = float(values[before.diameter]), float(values[after.diameter])  # type: ignore[arg-type]
         if not outer > inner:
-            collector.add("wall-inverted", place, f"the surface {after.name} does not lie outside {before.name}",
-                          found=f"{number_text(outer, 5)} m against {number_text(inner, 5)} m",
-                          expected="an outside diameter above the inside diameter")
+            collector.add(
+                "wall-inverted",
+                place,
+                f"the surface {after.name} does not lie outside {before.name}",
+                found=f"{number_text(outer, 5)} m against {number_text(inner, 5)} m",
+                expected="an outside diameter above the inside diameter",
+            )
         elif not inner > 0.0:
-            collector.add("wall-inverted", place, "the bore is not above zero", found=f"{number_text(inner, 5)} m")
+            collector.add(
+                "wall-inverted", place, "the bore is not above zero", found=f"{number_text(inner, 5)} m"
+            )
 
 
 # --- phases at the wall -----------------------------------------------------------------------------
@@ -142,7 +198,7 @@ def _check_surfaces(chain: Chain, values: Mapping[str, object], collector: Colle
 
 def wall_checks(chain: Chain, case: str, solution: Solution) -> list[CheckResult]:
     """Against boiling, condensing and freezing at every wetted surface of a film with a fluid."""
-    results = []
+    results: list[CheckResult] = []
     if not chain.has_temperatures:
         return results
     for group in (chain.inner, chain.outer):
@@ -152,7 +208,9 @@ def wall_checks(chain: Chain, case: str, solution: Solution) -> list[CheckResult
     return results
 
 
-def _film_checks(chain: Chain, case: str, solution: Solution, group: Group, branch: Branch) -> list[CheckResult]:
+def _film_checks(
+    chain: Chain, case: str, solution: Solution, group: Group, branch: Branch
+) -> list[CheckResult]:
     state = chain.streams[branch.stream]
     pressure = solution.number(state.pressure) if state.pressure else None
     fraction = solution.number(state.fraction) if state.fraction else None
@@ -164,26 +222,63 @@ def _film_checks(chain: Chain, case: str, solution: Solution, group: Group, bran
     def add(name: str, that: str, limit: float | None, inside: bool, sign: str, because: str) -> None:
         known = limit is not None and math.isfinite(limit)
         state_word = "not evaluable" if not known else ("within" if inside else "outside")
-        limit_text = f"{sign} {apart(limit - ICE_POINT, (surface - ICE_POINT,), 4)} °C" if known and limit is not None \
+        limit_text = (
+            f"{sign} {apart(limit - ICE_POINT, (surface - ICE_POINT,), 4)} °C"
+            if known and limit is not None
             else "not known without a pressure"
+        )
         figure = f"T_s = {apart(surface - ICE_POINT, ((limit or 0.0) - ICE_POINT,), 4)} °C"
-        checks.append(CheckResult(f"{branch.name} / wall phase / {name}", branch.name, "wall phase", solution.condition,
-                                  case, that, figure, limit_text, surface, "K", "range", state_word, because,
-                                  state.fluid_name, "independent library"))
+        checks.append(
+            CheckResult(
+                f"{branch.name} / wall phase / {name}",
+                branch.name,
+                "wall phase",
+                solution.condition,
+                case,
+                that,
+                figure,
+                limit_text,
+                surface,
+                "K",
+                "range",
+                state_word,
+                because,
+                state.fluid_name,
+                "independent library",
+            )
+        )
 
     phase_change = branch.situation.changes_phase if branch.situation is not None else ""
     if fluid.has_vapour_pressure and not phase_change:
         boiling = fluid.saturation_temperature()
         if phase == "liquid":
-            add("boils", "T_s < T_sat", boiling, boiling is not None and surface < boiling, "<",
-                "the method is for a liquid without boiling at the surface")
+            add(
+                "boils",
+                "T_s < T_sat",
+                boiling,
+                boiling is not None and surface < boiling,
+                "<",
+                "the method is for a liquid without boiling at the surface",
+            )
         elif phase == "gas" and boiling is not None:
-            add("condenses", f"T_s > {'T_dew' if state.fluid.text.kind == 'humid air' else 'T_sat'}", boiling, surface > boiling, ">",
-                "the method is for a gas without condensing at the surface")
+            add(
+                "condenses",
+                f"T_s > {'T_dew' if state.fluid.text.kind == 'humid air' else 'T_sat'}",
+                boiling,
+                surface > boiling,
+                ">",
+                "the method is for a gas without condensing at the surface",
+            )
     freezing = fluid.freezing_temperature()
     if (phase == "liquid" or phase_change) and freezing is not None:
-        add("freezes", "T_s > T_freeze", freezing, surface > freezing, ">",
-            "the method is for a liquid that does not freeze at the surface")
+        add(
+            "freezes",
+            "T_s > T_freeze",
+            freezing,
+            surface > freezing,
+            ">",
+            "the method is for a liquid that does not freeze at the surface",
+        )
     return checks
 
 
@@ -206,18 +301,30 @@ def assumptions_of(chain: Chain, solutions: Mapping[str, Solution]) -> tuple[Run
                 candidate = chosen(branch, solution)
                 if branch.situation is not None and not branch.is_forced:
                     figures = _choice_figures(branch, solution)
-                    say(f"{branch.name}/method/{condition}", f"{condition}: method {candidate.method.id}.",
-                        f"{candidate.because}; {figures}", branch.name)
+                    say(
+                        f"{branch.name}/method/{condition}",
+                        f"{condition}: method {candidate.method.id}.",
+                        f"{candidate.because}; {figures}",
+                        branch.name,
+                    )
                 if candidate.needs_direction and chain.has_temperatures:
                     text, by = _direction(group, branch, solution)
                     say(f"{branch.name}/direction/{condition}", f"{condition}: {text}", by, branch.name)
     for state in chain.streams.values():
         if not state.pressure and state.fluid.text.kind == "name":
-            say(f"stream {state.name}/saturated", f"Properties of {state.name} are those of the saturated liquid.",
-                "no pressure is stated; checks against boiling at the wall cannot be evaluated", f"stream {state.name}")
+            say(
+                f"stream {state.name}/saturated",
+                f"Properties of {state.name} are those of the saturated liquid.",
+                "no pressure is stated; checks against boiling at the wall cannot be evaluated",
+                f"stream {state.name}",
+            )
         if state.fluid.text.kind not in ("name", "humid air"):
-            say(f"stream {state.name}/vapour pressure", f"Boiling at the wall is not checked for {state.name}.",
-                "its fluid has no vapour pressure", f"stream {state.name}")
+            say(
+                f"stream {state.name}/vapour pressure",
+                f"Boiling at the wall is not checked for {state.name}.",
+                "its fluid has no vapour pressure",
+                f"stream {state.name}",
+            )
         if not state.phase:
             solution = solutions[SERVICE]
             pressure = solution.number(state.pressure) if state.pressure else None
@@ -225,14 +332,28 @@ def assumptions_of(chain: Chain, solutions: Mapping[str, Solution]) -> tuple[Run
             at = solution.number(state.temperature) if state.temperature in solution.values else math.nan
             if math.isfinite(at):
                 phase = state.fluid.state(pressure, fraction, "").phase_at(at)
-                say(f"stream {state.name}/phase", f"{state.name} is taken as {phase}.",
-                    f"state at {celsius(at)}" + (f" and {number_text(pressure / 1e5, 5)} bar" if pressure else ""),
-                    f"stream {state.name}")
+                say(
+                    f"stream {state.name}/phase",
+                    f"{state.name} is taken as {phase}.",
+                    f"state at {celsius(at)}"
+                    + (f" and {number_text(pressure / 1e5, 5)} bar" if pressure else ""),
+                    f"stream {state.name}",
+                )
     if chain.has_temperatures:
-        say("conditions", "Clean and service are compared at the stated bulk temperatures.", "no duty is stated", "U")
+        say(
+            "conditions",
+            "Clean and service are compared at the stated bulk temperatures.",
+            "no duty is stated",
+            "U",
+        )
     sides = {layer.surface for layer in chain.elements if getattr(layer, "kind", "") == "fouling"}
     if not sides:
-        say("fouling", "No fouling term is stated: clean and service are the same.", "the list of resistances", "U")
+        say(
+            "fouling",
+            "No fouling term is stated: clean and service are the same.",
+            "the list of resistances",
+            "U",
+        )
     else:
         middle = (len(chain.surfaces) - 1) / 2.0
         for side, there in (("inside", min(sides) < middle), ("outside", max(sides) > middle)):
@@ -243,8 +364,12 @@ def assumptions_of(chain: Chain, solutions: Mapping[str, Solution]) -> tuple[Run
 
 def _choice_figures(branch: Branch, solution: Solution) -> str:
     """The figures that the choice was made on."""
-    names = dict.fromkeys(f"{symbol}" for row in branch.choice for symbol in row.inputs
-                          if row.inputs[symbol] in solution.values and not row.inputs[symbol].startswith("word "))
+    names = dict.fromkeys(
+        f"{symbol}"
+        for row in branch.choice
+        for symbol in row.inputs
+        if row.inputs[symbol] in solution.values and not row.inputs[symbol].startswith("word ")
+    )
     texts = []
     for symbol in names:
         bound = next(row.inputs[symbol] for row in branch.choice if symbol in row.inputs)
@@ -258,15 +383,18 @@ def _choice_figures(branch: Branch, solution: Solution) -> str:
 
 def _direction(group: Group, branch: Branch, solution: Solution) -> tuple[str, str]:
     surface, bulk = solution.number(group.surface_temperature), solution.number(branch.reference)
-    figures = (f"surface {apart(surface - ICE_POINT, (bulk - ICE_POINT,), 4)} °C,"
-               f" bulk {apart(bulk - ICE_POINT, (surface - ICE_POINT,), 4)} °C of this fluid")
+    figures = (
+        f"surface {apart(surface - ICE_POINT, (bulk - ICE_POINT,), 4)} °C,"
+        f" bulk {apart(bulk - ICE_POINT, (surface - ICE_POINT,), 4)} °C of this fluid"
+    )
     if surface == bulk:
         return "the direction of heat flow is undetermined.", figures
     return f"the fluid is {'heated' if surface > bulk else 'cooled'}.", figures
 
 
-def root_items(chain: Chain, case: str, inputs: Mapping[str, np.ndarray], solutions: Mapping[str, Solution]
-               ) -> tuple[OpenItem, ...]:
+def root_items(
+    chain: Chain, case: str, inputs: Mapping[str, np.ndarray], solutions: Mapping[str, Solution]
+) -> tuple[OpenItem, ...]:
     """Open items for a circuit that closes at more than one heat flow."""
     items = []
     for condition in reversed(CONDITIONS):
@@ -275,9 +403,14 @@ def root_items(chain: Chain, case: str, inputs: Mapping[str, np.ndarray], soluti
         if others:
             taken = number_text(solutions[condition].number("solution/Q"), 4)
             shown = ", ".join(number_text(other, 3) for other in others)
-            items.append(OpenItem(f"circuit / heat flows / {where}", "jump",
-                                  f"The circuit ({where}) closes at more than one heat flow: {taken} W is taken, it"
-                                  f" closes near {shown} W as well."))
+            items.append(
+                OpenItem(
+                    f"circuit / heat flows / {where}",
+                    "jump",
+                    f"The circuit ({where}) closes at more than one heat flow: {taken} W is taken, it"
+                    f" closes near {shown} W as well.",
+                )
+            )
     return tuple(items)
 
 
@@ -290,17 +423,27 @@ def jump_items(chain: Chain, case: str, solutions: Mapping[str, Solution]) -> tu
         solution = solutions[condition]
         where = f"case {case}, {condition}" if case else condition
         for film, (lower, upper) in solution.jump_sides.items():
-            items.append(OpenItem(f"{film} / joint / {where}", "jump",
-                                  f"{film} ({where}): the law jumps at a joint and has no root there; the lower side"
-                                  f" {number_text(float(lower.ravel()[0]), 5)} W/(m²·K) is taken, the upper is"
-                                  f" {number_text(float(upper.ravel()[0]), 5)} W/(m²·K)."))
+            items.append(
+                OpenItem(
+                    f"{film} / joint / {where}",
+                    "jump",
+                    f"{film} ({where}): the law jumps at a joint and has no root there; the lower side"
+                    f" {number_text(float(lower.ravel()[0]), 5)} W/(m²·K) is taken, the upper is"
+                    f" {number_text(float(upper.ravel()[0]), 5)} W/(m²·K).",
+                )
+            )
         if not chain.has_temperatures:
             continue
         for group in (chain.inner, chain.outer):
             for branch in group.branches:
                 still = solution.number(group.surface_temperature) == solution.number(group.bulk)
                 if still and chosen(branch, solution).needs_direction:
-                    items.append(OpenItem(f"{branch.name} / direction / {where}", "check",
-                                          f"{branch.name} ({where}): surface and bulk have one temperature; heated or"
-                                          " cooled is undetermined."))
+                    items.append(
+                        OpenItem(
+                            f"{branch.name} / direction / {where}",
+                            "check",
+                            f"{branch.name} ({where}): surface and bulk have one temperature; heated or"
+                            " cooled is undetermined.",
+                        )
+                    )
     return tuple(items)

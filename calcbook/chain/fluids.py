@@ -70,7 +70,7 @@ class PropertyOperation:
     """
 
     source: FluidSource
-    property: str
+    property_name: str
     phase: str
     has_pressure: bool
     has_fraction: bool
@@ -82,16 +82,20 @@ class PropertyOperation:
         return ("T", *(name for name, there in flags if there))
 
     def value(self, arguments: Mapping[str, Array]) -> Array:
-        return self.by_state(arguments, lambda state, at: state.value(self.property, at, outside="nan"))
+        return self.by_state(arguments, lambda state, at: state.value(self.property_name, at, outside="nan"))
 
     def slopes(self, arguments: Mapping[str, Array], value: Array, wanted: Iterable[str]) -> dict[str, Array]:
         return {symbol: self._slope(symbol, arguments) for symbol in wanted}
 
     def _slope(self, symbol: str, arguments: Mapping[str, Array]) -> Array:
         if symbol == "T":
-            return self.by_state(arguments, lambda state, at: state.slope(self.property, at, outside="nan"))
+            return self.by_state(
+                arguments, lambda state, at: state.slope(self.property_name, at, outside="nan")
+            )
         if symbol == "p":
-            return self.by_state(arguments, lambda state, at: state.pressure_slope(self.property, at, outside="nan"))
+            return self.by_state(
+                arguments, lambda state, at: state.pressure_slope(self.property_name, at, outside="nan")
+            )
         if symbol == "w":
             below = np.maximum(np.asarray(arguments["w"]) - FRACTION_STEP, 0.0)
             above = np.asarray(arguments["w"]) + FRACTION_STEP
@@ -187,7 +191,11 @@ class FixedOperation:
 def _is_liquid(state: FluidAtPressure, temperature: Array) -> Array:
     """Along one pressure a liquid lies below all else: the coldest and the hottest sample settle most calls."""
     known = temperature[~np.isnan(temperature)]
-    ends = {state.phase_at(float(item)) == "liquid" for item in (known.min(), known.max())} if known.size else {False}
+    ends = (
+        {state.phase_at(float(item)) == "liquid" for item in (known.min(), known.max())}
+        if known.size
+        else {False}
+    )
     if len(ends) == 1:
         return np.full(temperature.shape, float(*ends))
     found = [state.phase_at(float(item)) == "liquid" for item in temperature.ravel()]

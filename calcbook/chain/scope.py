@@ -15,7 +15,20 @@ from calcbook.library.operations import Operation, RelationOperation
 from calcbook.quantities import DIMENSIONLESS, Dimension, QuantityFault, QuantityKind, as_kind, si_unit
 
 EMPTY_SOURCES = frozenset(
-    ("", "tbd", "tbc", "todo", "none", "n/a", "na", "?", "-", "unknown", "to be determined", "to be confirmed")
+    (
+        "",
+        "tbd",
+        "tbc",
+        "todo",
+        "none",
+        "n/a",
+        "na",
+        "?",
+        "-",
+        "unknown",
+        "to be determined",
+        "to be confirmed",
+    )
 )
 STANDARD_PRESSURE = 101_325.0
 
@@ -54,8 +67,18 @@ class Scope:
         self.dimensions[name] = dim
         return name
 
-    def step(self, name: str, symbol: str, title: str, owner: str, operation: Operation, inputs: Mapping[str, str],
-             basis: str, kind: QuantityKind | None = None, place: Place | None = None) -> str:
+    def step(
+        self,
+        name: str,
+        symbol: str,
+        title: str,
+        owner: str,
+        operation: Operation,
+        inputs: Mapping[str, str],
+        basis: str,
+        kind: QuantityKind | None = None,
+        place: Place | None = None,
+    ) -> str:
         """Add a step (once) and find its dimension; a slip is a fault at ``place``."""
         if name in self.steps:
             return name
@@ -68,16 +91,31 @@ class Scope:
                 where, text = place or self.calculation.place, operation.relation.text
                 if where.excerpt[where.column - 1 :].startswith(text):
                     where = where.part(error.column - 1, error.end_column - error.column)
-                self.collector.add("dimension-slip", where, f"{title}: {error.message}", found=shown(text, 100),
-                                   expected=error.expected or "quantities whose units fit")
+                self.collector.add(
+                    "dimension-slip",
+                    where,
+                    f"{title}: {error.message}",
+                    found=shown(text, 100),
+                    expected=error.expected or "quantities whose units fit",
+                )
         if kind is None or kind.dimension != found:
             kind = _unnamed(symbol, found)
         self.dimensions[name] = found
         self.steps[name] = ChainStep(name, symbol, title, kind, owner, operation, dict(inputs), basis)
         return name
 
-    def relation_step(self, name: str, symbol: str, title: str, owner: str, relation: Relation,
-                      inputs: Mapping[str, str], basis: str, kind: str = "", place: Place | None = None) -> str:
+    def relation_step(
+        self,
+        name: str,
+        symbol: str,
+        title: str,
+        owner: str,
+        relation: Relation,
+        inputs: Mapping[str, str],
+        basis: str,
+        kind: str = "",
+        place: Place | None = None,
+    ) -> str:
         """Add a step that is a plain relation."""
         known = vocabulary().get(kind)
         return self.step(name, symbol, title, owner, RelationOperation(relation), inputs, basis, known, place)
@@ -101,9 +139,14 @@ class Scope:
         given = self.calculation.givens.get(symbol)
         if given is None and symbol not in self.calculation.derived:
             known = [*self.calculation.givens, *self.calculation.derived]
-            self.collector.add("symbol-unknown", value.place, f"`{shown(symbol)}` is neither a given nor derived",
-                               found=shown(symbol), expected=", ".join(known) or "a quantity with its unit",
-                               nearest=nearest_names(symbol, known))
+            self.collector.add(
+                "symbol-unknown",
+                value.place,
+                f"`{shown(symbol)}` is neither a given nor derived",
+                found=shown(symbol),
+                expected=", ".join(known) or "a quantity with its unit",
+                nearest=nearest_names(symbol, known),
+            )
             return ""
         self.used_in.setdefault(symbol, []).append(f"{owner}, {key}" if key else owner)
         if given is None:
@@ -115,20 +158,31 @@ class Scope:
         if name not in self.dimensions:
             return ""
         if self.dimensions[name] != kind.dimension:
-            self.collector.add("unit-dimension", value.place, f"`{value.symbol}` is no {kind.name}",
-                               found=si_unit(self.dimensions[name]), expected=kind.unit)
+            self.collector.add(
+                "unit-dimension",
+                value.place,
+                f"`{value.symbol}` is no {kind.name}",
+                found=si_unit(self.dimensions[name]),
+                expected=kind.unit,
+            )
             return ""
         return name
 
     def _given(self, given: Given, kind: QuantityKind, owner: str, key: str) -> str:
         before = self.kinds.get(given.symbol)
         if before is not None and (before.scale == "point") != (kind.scale == "point"):
-            self.collector.add("given-used-both-ways", given.value.place,
-                               f"`{given.symbol}` is used as a temperature and as a temperature difference",
-                               expected="two givens, one for each")
+            self.collector.add(
+                "given-used-both-ways",
+                given.value.place,
+                f"`{given.symbol}` is used as a temperature and as a temperature difference",
+                expected="two givens, one for each",
+            )
             return ""
         gauge = ""
-        for one in (given, *(case[given.symbol] for case in self.calculation.cases.values() if given.symbol in case)):
+        for one in (
+            given,
+            *(case[given.symbol] for case in self.calculation.cases.values() if given.symbol in case),
+        ):
             reading = self._as_kind(one.value, kind, f"{owner}, {key}")
             if reading is None:
                 return ""
@@ -146,7 +200,9 @@ class Scope:
         if name not in self.inputs:
             figure = as_kind(value.quantity, kind).value
             title = f"{key} of {owner}"
-            self.inputs[name] = Input(name, kind.symbol, title, kind, figure, value.text, value.source, value.place, False)
+            self.inputs[name] = Input(
+                name, kind.symbol, title, kind, figure, value.text, value.source, value.place, False
+            )
             self.dimensions[name] = kind.dimension
             self.check_source(value, name)
         self._say_reading(reading, value, f"{owner}, {key}")
@@ -155,44 +211,74 @@ class Scope:
     def _as_kind(self, value: Value, kind: QuantityKind, use: str) -> str | None:
         """How a figure reads as a kind (its reading), or None after a fault."""
         if value.quantity is None:
-            self.collector.add("unit-missing", value.place, f"a {kind.name} is wanted here", found=shown(value.text),
-                               expected=f"a number with its unit, such as 1 {kind.unit}")
+            self.collector.add(
+                "unit-missing",
+                value.place,
+                f"a {kind.name} is wanted here",
+                found=shown(value.text),
+                expected=f"a number with its unit, such as 1 {kind.unit}",
+            )
             return None
         try:
             return as_kind(value.quantity, kind).reading or "as written"
         except QuantityFault as error:
             place = value.place.part(max(error.column - 1, 0), max(error.end_column - error.column, 1))
-            self.collector.add(error.code, place, f"{error.message} ({use})", found=error.found,
-                               expected=error.expected, nearest=error.nearest)
+            self.collector.add(
+                error.code,
+                place,
+                f"{error.message} ({use})",
+                found=error.found,
+                expected=error.expected,
+                nearest=error.nearest,
+            )
             return None
 
     def _say_reading(self, reading: str, value: Value, where: str) -> None:
         if reading == "taken as absolute":
-            self.assume(f"{where}/pressure absolute", f"The pressure {value.text} is taken as absolute.",
-                        "its unit does not say absolute or gauge", where)
+            self.assume(
+                f"{where}/pressure absolute",
+                f"The pressure {value.text} is taken as absolute.",
+                "its unit does not say absolute or gauge",
+                where,
+            )
 
     def _above_site(self, name: str, symbol: str, owner: str) -> str:
         """The absolute pressure that belongs to a gauge pressure."""
         from calcbook.formulas import parse_expression
 
         site = self.site_pressure()
-        return self.relation_step(f"{name}/absolute", "p", f"absolute pressure of {owner}", owner,
-                                  parse_expression("p_g + p_site"), {"p_g": name, "p_site": site}, "site pressure",
-                                  "pressure")
+        return self.relation_step(
+            f"{name}/absolute",
+            "p",
+            f"absolute pressure of {owner}",
+            owner,
+            parse_expression("p_g + p_site"),
+            {"p_g": name, "p_site": site},
+            "site pressure",
+            "pressure",
+        )
 
     def site_pressure(self) -> str:
         """The pressure of the site: from the book, or the standard atmosphere, said in the record."""
         stated = self.calculation.settings.site_pressure
         if stated is not None:
             return self.value(stated, "pressure", "book", "site pressure")
-        self.assume("book/site pressure", "Gauge pressures stand on 101.325 kPa.",
-                    "the book states no site pressure; standard atmosphere", "gauge pressures")
+        self.assume(
+            "book/site pressure",
+            "Gauge pressures stand on 101.325 kPa.",
+            "the book states no site pressure; standard atmosphere",
+            "gauge pressures",
+        )
         return self.constant("book/site pressure", STANDARD_PRESSURE, vocabulary()["pressure"].dimension)
 
     def check_source(self, value: Value, name: str) -> None:
         """A literal that moves a result needs a source; a bare or empty one is an open item."""
         if value.source.strip(" .").casefold() in EMPTY_SOURCES:
-            self.open(f"{name}/source", "source", f"The value {value.text} ({name.replace('/', ', ')}) has no source.")
+            self.open(
+                f"{name}/source",
+                "source",
+                f"The value {value.text} ({name.replace('/', ', ')}) has no source.",
+            )
 
 
 def _unnamed(symbol: str, dim: Dimension) -> QuantityKind:

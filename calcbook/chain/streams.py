@@ -50,19 +50,46 @@ def lay_out_stream(scope: Scope, stream: Stream, library: Library) -> StreamStat
         flow, flow_kind = scope.unread(vocabulary()["speed"]), "speed"
     assert stream.temperature is not None
     place = stream.temperature.place
-    state = StreamState(stream.name, fluid, _provider(scope, fluid, stream), stream.phase, temperature, pressure,
-                        fraction, flow, flow_kind, "", place)
+    state = StreamState(
+        stream.name,
+        fluid,
+        _provider(scope, fluid, stream),
+        stream.phase,
+        temperature,
+        pressure,
+        fraction,
+        flow,
+        flow_kind,
+        "",
+        place,
+    )
     mass_flow = _mass_flow(scope, stream, state) if flow else ""
     share = scope.value(stream.non_condensable, "mole fraction", owner, "non-condensable")
-    return StreamState(state.name, state.fluid, state.fluid_name, state.phase, temperature, pressure, fraction, flow,
-                       state.flow_kind, mass_flow, place, saturation, share)
+    return StreamState(
+        state.name,
+        state.fluid,
+        state.fluid_name,
+        state.phase,
+        temperature,
+        pressure,
+        fraction,
+        flow,
+        state.flow_kind,
+        mass_flow,
+        place,
+        saturation,
+        share,
+    )
 
 
 def is_saturation(scope: Scope, value: Value | None) -> bool:
     """Whether the word `saturation` stands where a temperature is wanted, and is no symbol of the file."""
     calculation = scope.calculation
-    return value is not None and value.symbol == SATURATION and SATURATION not in (
-        *calculation.givens, *calculation.derived, *calculation.broken)
+    return (
+        value is not None
+        and value.symbol == SATURATION
+        and SATURATION not in (*calculation.givens, *calculation.derived, *calculation.broken)
+    )
 
 
 def has_saturation(fluid: FluidSource) -> bool:
@@ -77,21 +104,37 @@ def _saturation(scope: Scope, stream: Stream, fluid: FluidSource | None, pressur
     if fluid is None:
         return ""
     if not has_saturation(fluid):
-        scope.collector.add("saturation-unknown", place, f"{fluid.text.name} has no saturation line",
-                            found="temperature: saturation", expected="a pure fluid, or a temperature")
+        scope.collector.add(
+            "saturation-unknown",
+            place,
+            f"{fluid.text.name} has no saturation line",
+            found="temperature: saturation",
+            expected="a pure fluid, or a temperature",
+        )
         return ""
     for key, there in (("pressure", pressure), ("phase", stream.phase)):
         if not there:
-            scope.collector.add("key-missing", place, f"a saturated stream states its {key}",
-                                expected="pressure: … and phase: liquid or gas on the stream")
+            scope.collector.add(
+                "key-missing",
+                place,
+                f"a saturated stream states its {key}",
+                expected="pressure: … and phase: liquid or gas on the stream",
+            )
     if not pressure or not stream.phase:
         return ""
     # A second saturated stream takes a symbol of its own, so that the heat flux names both.
     number = sum(isinstance(step.operation, BoilingOperation) for step in scope.steps.values()) + 1
     symbol = "T_sat" if number == 1 else f"T_sat{number}"
-    return scope.step(f"stream {stream.name}/T_sat", symbol, "saturation temperature", f"stream {stream.name}",
-                      BoilingOperation(fluid), {"p": pressure}, _provider(scope, fluid, stream),
-                      vocabulary()["saturation temperature"])
+    return scope.step(
+        f"stream {stream.name}/T_sat",
+        symbol,
+        "saturation temperature",
+        f"stream {stream.name}",
+        BoilingOperation(fluid),
+        {"p": pressure},
+        _provider(scope, fluid, stream),
+        vocabulary()["saturation temperature"],
+    )
 
 
 def _humidity(scope: Scope, stream: Stream, fluid: FluidSource, temperature: str, pressure: str) -> str:
@@ -99,30 +142,62 @@ def _humidity(scope: Scope, stream: Stream, fluid: FluidSource, temperature: str
     assert stream.fluid is not None and stream.fluid.fraction is not None
     owner, text = f"stream {stream.name}", stream.fluid
     if not pressure:
-        scope.collector.add("key-missing", text.place, f"the humid air of stream {stream.name} has no pressure",
-                            expected="pressure: … on the stream")
+        scope.collector.add(
+            "key-missing",
+            text.place,
+            f"the humid air of stream {stream.name} has no pressure",
+            expected="pressure: … on the stream",
+        )
         return ""
-    scope.assume(f"{owner}/humid air", f"The mass flow of {stream.name} is that of the humid air: its density and heat"
-                 " capacity are those of a kilogram of humid air.", "its dry air and its water flow together", owner)
-    scope.assume(f"{owner}/humidity", f"{stream.name} keeps its water at a surface below its dew point, for its"
-                 " properties there.", "its films are for a gas that does not condense; the wall is checked", owner)
+    scope.assume(
+        f"{owner}/humid air",
+        f"The mass flow of {stream.name} is that of the humid air: its density and heat"
+        " capacity are those of a kilogram of humid air.",
+        "its dry air and its water flow together",
+        owner,
+    )
+    scope.assume(
+        f"{owner}/humidity",
+        f"{stream.name} keeps its water at a surface below its dew point, for its properties there.",
+        "its films are for a gas that does not condense; the wall is checked",
+        owner,
+    )
     assert text.fraction is not None
     stated = scope.value(text.fraction, text.basis, owner, text.basis)
     humidity = _si_of(scope, text.fraction)
     if text.basis != HUMIDITY_RATIO and humidity is not None and humidity > 1.0:
-        scope.collector.add("fraction-outside", text.fraction.place, "a relative humidity lies from 0 to 100 %",
-                            found=f"{humidity:.6g}", expected="such as 60 %")
+        scope.collector.add(
+            "fraction-outside",
+            text.fraction.place,
+            "a relative humidity lies from 0 to 100 %",
+            found=f"{humidity:.6g}",
+            expected="such as 60 %",
+        )
         return ""
     if text.basis == HUMIDITY_RATIO:
         return stated
     name = properties.SATURATION_FRACTION
     operation = PropertyOperation(fluid, name, "gas", True, False)
-    fraction = scope.step(f"{owner}/{name}", "x_ws", "mole fraction of water in saturated air", owner, operation,
-                          {"T": temperature, "p": pressure}, fluid.at_fraction(None).provider,
-                          vocabulary()[name])
-    return scope.relation_step(f"{owner}/humidity ratio", "W", "humidity ratio", owner,
-                               parse_expression(HUMIDITY), {"phi": stated, "x_ws": fraction},
-                               "mole fractions; 0.621945 is the molar mass of water over that of dry air", HUMIDITY_RATIO)
+    fraction = scope.step(
+        f"{owner}/{name}",
+        "x_ws",
+        "mole fraction of water in saturated air",
+        owner,
+        operation,
+        {"T": temperature, "p": pressure},
+        fluid.at_fraction(None).provider,
+        vocabulary()[name],
+    )
+    return scope.relation_step(
+        f"{owner}/humidity ratio",
+        "W",
+        "humidity ratio",
+        owner,
+        parse_expression(HUMIDITY),
+        {"phi": stated, "x_ws": fraction},
+        "mole fractions; 0.621945 is the molar mass of water over that of dry air",
+        HUMIDITY_RATIO,
+    )
 
 
 def _provider(scope: Scope, fluid: FluidSource, stream: Stream) -> str:
@@ -134,7 +209,9 @@ def _provider(scope: Scope, fluid: FluidSource, stream: Stream) -> str:
     try:
         return fluid.at_fraction(fraction).provider
     except PropertyFault as error:
-        scope.collector.add(error.code, fluid.text.place, error.message, expected=error.expected, nearest=error.nearest)
+        scope.collector.add(
+            error.code, fluid.text.place, error.message, expected=error.expected, nearest=error.nearest
+        )
         return fluid.text.name
 
 
@@ -162,7 +239,9 @@ def _fluid(scope: Scope, text: FluidText, library: Library) -> FluidSource | Non
             return FluidSource(text, properties.constant(_constants(scope, text), name=text.name))
         return FluidSource(text, _tabulated(scope, text))
     except PropertyFault as error:
-        scope.collector.add(error.code, text.place, error.message, expected=error.expected, nearest=error.nearest)
+        scope.collector.add(
+            error.code, text.place, error.message, expected=error.expected, nearest=error.nearest
+        )
         return None
 
 
@@ -178,15 +257,26 @@ def _figures(scope: Scope, values: tuple[Value, ...], kind_name: str) -> list[fl
     figures = []
     for value in values:
         if value.quantity is None:
-            scope.collector.add("unit-missing", value.place, f"a {kind.name} is wanted here", found=value.text,
-                                expected=f"a number with its unit, such as 1 {kind.unit}")
+            scope.collector.add(
+                "unit-missing",
+                value.place,
+                f"a {kind.name} is wanted here",
+                found=value.text,
+                expected=f"a number with its unit, such as 1 {kind.unit}",
+            )
             continue
         try:
             figures.append(as_kind(value.quantity, kind).value)
         except QuantityFault as error:
             place = value.place.part(error.column - 1, error.end_column - error.column)
-            scope.collector.add(error.code, place, error.message, found=error.found, expected=error.expected,
-                                nearest=error.nearest)
+            scope.collector.add(
+                error.code,
+                place,
+                error.message,
+                found=error.found,
+                expected=error.expected,
+                nearest=error.nearest,
+            )
     return figures
 
 
@@ -219,11 +309,16 @@ def _tabulated(scope: Scope, text: FluidText) -> properties.Fluid:
 
 def _astm_points(scope: Scope, text: FluidText) -> list[tuple[float, float]]:
     """The two points of a D341 viscosity in SI. Raises ``PropertyFault`` where one cannot be read."""
-    points = [(_figures(scope, (one,), "temperature"), _figures(scope, (two,), "kinematic viscosity"))
-              for one, two in text.astm]
+    points = [
+        (_figures(scope, (one,), "temperature"), _figures(scope, (two,), "kinematic viscosity"))
+        for one, two in text.astm
+    ]
     if not all(one and two for one, two in points):
-        raise PropertyFault("astm-points", "the two points of the D341 viscosity cannot be read",
-                            expected="[[40 degC, 46 mm^2/s], [100 degC, 6.8 mm^2/s]]")
+        raise PropertyFault(
+            "astm-points",
+            "the two points of the D341 viscosity cannot be read",
+            expected="[[40 degC, 46 mm^2/s], [100 degC, 6.8 mm^2/s]]",
+        )
     return [(one[0], two[0]) for one, two in points]
 
 
@@ -235,8 +330,11 @@ def _flow_kind(scope: Scope, flow: Value | None) -> str:
         return ""
     if flow.symbol:
         given = scope.calculation.givens.get(flow.symbol)
-        dim = given.value.quantity.dimension if given is not None and given.value.quantity else scope.dimensions.get(
-            f"derived/{flow.symbol}")
+        dim = (
+            given.value.quantity.dimension
+            if given is not None and given.value.quantity
+            else scope.dimensions.get(f"derived/{flow.symbol}")
+        )
         if dim is None and flow.symbol not in scope.calculation.derived:
             scope.value(flow, "mass flow", "stream", "flow")
         if dim is None:
@@ -246,8 +344,13 @@ def _flow_kind(scope: Scope, flow: Value | None) -> str:
     for name in FLOW_KINDS:
         if vocabulary()[name].dimension == dim:
             return name
-    scope.collector.add("unit-dimension", flow.place, "this is no flow", found=flow.text,
-                        expected="a mass flow (kg/s), a volume flow (m^3/h) or a speed (m/s)")
+    scope.collector.add(
+        "unit-dimension",
+        flow.place,
+        "this is no flow",
+        found=flow.text,
+        expected="a mass flow (kg/s), a volume flow (m^3/h) or a speed (m/s)",
+    )
     return ""
 
 
@@ -264,7 +367,9 @@ def _mass_flow(scope: Scope, stream: Stream, state: StreamState) -> str:
     where = "the bulk state"
     if stream.flow.stated_at:
         inputs = {
-            "T": scope.value(stream.flow.stated_at.get("temperature"), "temperature", owner, "flow temperature"),
+            "T": scope.value(
+                stream.flow.stated_at.get("temperature"), "temperature", owner, "flow temperature"
+            ),
             "p": scope.value(stream.flow.stated_at.get("pressure"), "pressure", owner, "flow pressure"),
         }
         if state.fraction:
@@ -274,9 +379,29 @@ def _mass_flow(scope: Scope, stream: Stream, state: StreamState) -> str:
         operation = PropertyOperation(state.fluid, "density", state.phase, True, bool(state.fraction))
         where = "its stated state"
     else:
-        scope.assume(f"{owner}/flow", f"The volume flow of {stream.name} is taken at its bulk state.",
-                     "no other state is stated", owner)
-    density = scope.step(f"{owner}/density of flow", "rho_V", f"density at {where}", owner, operation, inputs,
-                         state.fluid_name, vocabulary()["density"])
-    return scope.relation_step(f"{owner}/mass flow", "m", "mass flow", owner, parse_expression("V*rho_V"),
-                               {"V": state.flow, "rho_V": density}, "volume flow and density", "mass flow")
+        scope.assume(
+            f"{owner}/flow",
+            f"The volume flow of {stream.name} is taken at its bulk state.",
+            "no other state is stated",
+            owner,
+        )
+    density = scope.step(
+        f"{owner}/density of flow",
+        "rho_V",
+        f"density at {where}",
+        owner,
+        operation,
+        inputs,
+        state.fluid_name,
+        vocabulary()["density"],
+    )
+    return scope.relation_step(
+        f"{owner}/mass flow",
+        "m",
+        "mass flow",
+        owner,
+        parse_expression("V*rho_V"),
+        {"V": state.flow, "rho_V": density},
+        "volume flow and density",
+        "mass flow",
+    )

@@ -55,7 +55,11 @@ class Shape:
         """The index that the symbols of a surface carry."""
         if self.finned_side and surface == len(self.surfaces) - 1:
             return "tf"
-        return "i" if surface == 0 and self.outermost > 0 else ("o" if surface == self.outermost else str(surface))
+        return (
+            "i"
+            if surface == 0 and self.outermost > 0
+            else ("o" if surface == self.outermost else str(surface))
+        )
 
     def surface_named(self, scope: Scope, name: str, place) -> int | None:  # type: ignore[no-untyped-def]
         """The index of a surface as the file names it; None after a fault."""
@@ -65,11 +69,22 @@ class Shape:
         if name in ("bare", "total finned") and self.fins_failed:
             return None
         if name in ("bare", "total finned"):
-            scope.collector.add("surface-unknown", place, f"no film has fins: there is no surface `{name}`",
-                                found=name, expected=", ".join(names))
+            scope.collector.add(
+                "surface-unknown",
+                place,
+                f"no film has fins: there is no surface `{name}`",
+                found=name,
+                expected=", ".join(names),
+            )
             return None
-        scope.collector.add("surface-unknown", place, f"there is no surface `{shown(name)}`", found=shown(name),
-                            expected=", ".join(names), nearest=nearest_names(name, names))
+        scope.collector.add(
+            "surface-unknown",
+            place,
+            f"there is no surface `{shown(name)}`",
+            found=shown(name),
+            expected=", ".join(names),
+            nearest=nearest_names(name, names),
+        )
         return None
 
     def names(self) -> dict[str, int]:
@@ -87,13 +102,21 @@ BUNDLE_KEYS = ("tubes", "passes", "plugged", "effective length")
 
 def lay_out_shape(scope: Scope, geometry: Geometry, walls: tuple[Term, ...]) -> Shape | None:
     """Diameters, areas and surfaces; None after a fault that leaves nothing to go on with."""
-    values = {key: scope.value(value, _kind(key), "geometry", key) for key, value in geometry.dimensions.items()}
+    values = {
+        key: scope.value(value, _kind(key), "geometry", key) for key, value in geometry.dimensions.items()
+    }
     for key in geometry.dimensions:
         if key not in _keys(geometry.shape):
-            scope.collector.add("key-unknown", geometry.dimensions[key].place,
-                                f"a {geometry.shape} has no `{key}`", expected=", ".join(_keys(geometry.shape)))
+            scope.collector.add(
+                "key-unknown",
+                geometry.dimensions[key].place,
+                f"a {geometry.shape} has no `{key}`",
+                expected=", ".join(_keys(geometry.shape)),
+            )
     values = {key: value for key, value in values.items() if value}
-    thicknesses = [scope.value(wall.values.get("thickness"), "thickness", wall.name, "thickness") for wall in walls]
+    thicknesses = [
+        scope.value(wall.values.get("thickness"), "thickness", wall.name, "thickness") for wall in walls
+    ]
     if geometry.shape == "plane":
         return _plane(scope, walls, thicknesses, values)
     return _round(scope, geometry, walls, thicknesses, values)
@@ -118,20 +141,40 @@ def _kind(key: str) -> str:
 def _plane(scope: Scope, walls: tuple[Term, ...], thicknesses: list[str], values: dict[str, str]) -> Shape:
     area = values.get("area", "")
     if not area and "height" in values and "width" in values:
-        area = scope.relation_step("geometry/A", "A", "area", "geometry", parse_expression("H*W"),
-                                   {"H": values["height"], "W": values["width"]}, "geometry", "area")
+        area = scope.relation_step(
+            "geometry/A",
+            "A",
+            "area",
+            "geometry",
+            parse_expression("H*W"),
+            {"H": values["height"], "W": values["width"]},
+            "geometry",
+            "area",
+        )
     if not area:
         area = scope.constant("geometry/area of 1 m²", 1.0, vocabulary()["area"].dimension)
         scope.assume("geometry/area", "Heat flow is for 1 m² of wall.", "no area is stated", "geometry")
     if "perimeter" not in values and "height" in values and "width" in values:
-        values["perimeter"] = scope.relation_step("geometry/P", "P", "perimeter", "geometry", parse_expression("2*(H + W)"),
-                                                  {"H": values["height"], "W": values["width"]}, "geometry", "perimeter")
+        values["perimeter"] = scope.relation_step(
+            "geometry/P",
+            "P",
+            "perimeter",
+            "geometry",
+            parse_expression("2*(H + W)"),
+            {"H": values["height"], "W": values["width"]},
+            "geometry",
+            "perimeter",
+        )
     surfaces = tuple(Surface(name, area, "") for name in _surface_names(walls))
     laid = tuple(Wall(wall, index, thicknesses[index]) for index, wall in enumerate(walls))
     for wall, thickness in zip(walls, thicknesses, strict=True):
         if not thickness and "resistance" not in wall.values:
-            scope.collector.add("need-missing", wall.place, f"the wall `{wall.name}` has no thickness",
-                                expected="thickness: … with its unit")
+            scope.collector.add(
+                "need-missing",
+                wall.place,
+                f"the wall `{wall.name}` has no thickness",
+                expected="thickness: … with its unit",
+            )
     return Shape("plane", surfaces, laid, {**values, "area": area}, False)
 
 
@@ -144,24 +187,42 @@ def _surface_names(walls: tuple[Term, ...]) -> list[str]:
 # --- tube and sphere --------------------------------------------------------------------------------
 
 
-def _round(scope: Scope, geometry: Geometry, walls: tuple[Term, ...], thicknesses: list[str],
-           values: dict[str, str]) -> Shape | None:
+def _round(
+    scope: Scope, geometry: Geometry, walls: tuple[Term, ...], thicknesses: list[str], values: dict[str, str]
+) -> Shape | None:
     if not walls:
-        scope.collector.add("term-order", geometry.place, f"a {geometry.shape} needs a wall",
-                            expected="a term of kind wall between the films")
+        scope.collector.add(
+            "term-order",
+            geometry.place,
+            f"a {geometry.shape} needs a wall",
+            expected="a term of kind wall between the films",
+        )
         return None
     diameters = [_bore(scope, geometry, walls, thicknesses, values)]
     for index, wall in enumerate(walls):
-        outer = scope.value(wall.values.get("outside diameter"), "outside diameter", wall.name, "outside diameter")
+        outer = scope.value(
+            wall.values.get("outside diameter"), "outside diameter", wall.name, "outside diameter"
+        )
         if not outer and index == 0:
             outer = values.get("outside diameter", "")
         if not outer and diameters[-1] and thicknesses[index]:
-            outer = scope.relation_step(f"geometry/outside of {wall.name}", f"d_{index + 1}", f"diameter outside {wall.name}",
-                                        "geometry", parse_expression("d + 2*t"),
-                                        {"d": diameters[-1], "t": thicknesses[index]}, "geometry", "diameter")
+            outer = scope.relation_step(
+                f"geometry/outside of {wall.name}",
+                f"d_{index + 1}",
+                f"diameter outside {wall.name}",
+                "geometry",
+                parse_expression("d + 2*t"),
+                {"d": diameters[-1], "t": thicknesses[index]},
+                "geometry",
+                "diameter",
+            )
         if not outer:
-            scope.collector.add("need-missing", wall.place, f"the wall `{wall.name}` has no outside diameter",
-                                expected="thickness or outside diameter on the wall, or the outside diameter in the geometry")
+            scope.collector.add(
+                "need-missing",
+                wall.place,
+                f"the wall `{wall.name}` has no outside diameter",
+                expected="thickness or outside diameter on the wall, or the outside diameter in the geometry",
+            )
         diameters.append(outer)
     if not all(diameters):
         return None
@@ -171,7 +232,11 @@ def _round(scope: Scope, geometry: Geometry, walls: tuple[Term, ...], thicknesse
     if tubes:
         count = _tubes_in_parallel(scope, geometry, values, tubes)
     surfaces = tuple(
-        Surface(name, _area(scope, geometry.shape, name, index, len(walls), diameter, heated, tubes or count), diameter)
+        Surface(
+            name,
+            _area(scope, geometry.shape, name, index, len(walls), diameter, heated, tubes or count),
+            diameter,
+        )
         for index, (name, diameter) in enumerate(zip(_surface_names(walls), diameters, strict=True))
     )
     laid = tuple(Wall(wall, index, thicknesses[index]) for index, wall in enumerate(walls))
@@ -187,17 +252,29 @@ def _round(scope: Scope, geometry: Geometry, walls: tuple[Term, ...], thicknesse
     return Shape(geometry.shape, surfaces, laid, dimensions, per_metre, checks=checks)
 
 
-def _bore(scope: Scope, geometry: Geometry, walls: tuple[Term, ...], thicknesses: list[str],
-          values: dict[str, str]) -> str:
+def _bore(
+    scope: Scope, geometry: Geometry, walls: tuple[Term, ...], thicknesses: list[str], values: dict[str, str]
+) -> str:
     if "inside diameter" in values:
         return values["inside diameter"]
     if "outside diameter" in values and thicknesses and thicknesses[0]:
-        return scope.relation_step("geometry/d_i", "d_i", "inside diameter", "geometry", parse_expression("d_o - 2*t"),
-                                   {"d_o": values["outside diameter"], "t": thicknesses[0]}, "geometry",
-                                   "inside diameter")
+        return scope.relation_step(
+            "geometry/d_i",
+            "d_i",
+            "inside diameter",
+            "geometry",
+            parse_expression("d_o - 2*t"),
+            {"d_o": values["outside diameter"], "t": thicknesses[0]},
+            "geometry",
+            "inside diameter",
+        )
     if "inside diameter" not in geometry.dimensions:
-        scope.collector.add("need-missing", geometry.place, "the bore is not stated",
-                            expected="inside diameter in the geometry, or its outside diameter and a wall thickness")
+        scope.collector.add(
+            "need-missing",
+            geometry.place,
+            "the bore is not stated",
+            expected="inside diameter in the geometry, or its outside diameter and a wall thickness",
+        )
     return ""
 
 
@@ -206,11 +283,18 @@ def _length(scope: Scope, geometry: Geometry, values: dict[str, str]) -> tuple[s
     if not count and "tubes" not in geometry.dimensions:
         count = scope.constant("geometry/one tube", 1.0)
         if geometry.shape == "tube":
-            scope.assume("geometry/parallel", "One tube carries the flow.", "no number of tubes in parallel is stated", "geometry")
+            scope.assume(
+                "geometry/parallel",
+                "One tube carries the flow.",
+                "no number of tubes in parallel is stated",
+                "geometry",
+            )
     length = values.get("length", "") or values.get("effective length", "")
     if length or geometry.shape == "sphere":
         return length, count, False
-    scope.assume("geometry/length", "Areas and heat flow are for 1 m of tube.", "no length is stated", "geometry")
+    scope.assume(
+        "geometry/length", "Areas and heat flow are for 1 m of tube.", "no length is stated", "geometry"
+    )
     return scope.constant("geometry/1 m", 1.0, vocabulary()["length"].dimension), count, True
 
 
@@ -219,8 +303,12 @@ def _heated_length(scope: Scope, values: dict[str, str], length: str) -> str:
     effective = values.get("effective length", "")
     if not effective:
         return length
-    scope.assume("geometry/effective length", "Areas and heat-transfer methods take the effective length; friction takes the"
-                 " whole length.", "an effective length is stated", "geometry")
+    scope.assume(
+        "geometry/effective length",
+        "Areas and heat-transfer methods take the effective length; friction takes the whole length.",
+        "an effective length is stated",
+        "geometry",
+    )
     return effective
 
 
@@ -229,15 +317,30 @@ def _open_tubes(scope: Scope, geometry: Geometry, values: dict[str, str]) -> str
     tubes, plugged = values.get("tubes", ""), values.get("plugged", "")
     _refuse_parts_of_tubes(scope, geometry)
     for key in ("passes", "plugged"):
-        if key in geometry.dimensions and "tubes" not in geometry.dimensions and "parallel" not in geometry.dimensions:
-            scope.collector.add("key-missing", geometry.dimensions[key].place, f"`{key}` belongs to a bundle: `tubes` is missing",
-                                expected="tubes: the number of tubes of the bundle, plugged ones included")
+        if (
+            key in geometry.dimensions
+            and "tubes" not in geometry.dimensions
+            and "parallel" not in geometry.dimensions
+        ):
+            scope.collector.add(
+                "key-missing",
+                geometry.dimensions[key].place,
+                f"`{key}` belongs to a bundle: `tubes` is missing",
+                expected="tubes: the number of tubes of the bundle, plugged ones included",
+            )
             return ""
     if not tubes or not plugged:
         return tubes
-    return scope.relation_step("geometry/open tubes", "N_open", "tubes that are not plugged", "geometry",
-                               parse_expression("N_all - N_plug"), {"N_all": tubes, "N_plug": plugged}, "bundle",
-                               "open tubes")
+    return scope.relation_step(
+        "geometry/open tubes",
+        "N_open",
+        "tubes that are not plugged",
+        "geometry",
+        parse_expression("N_all - N_plug"),
+        {"N_all": tubes, "N_plug": plugged},
+        "bundle",
+        "open tubes",
+    )
 
 
 def _refuse_parts_of_tubes(scope: Scope, geometry: Geometry) -> None:
@@ -247,24 +350,56 @@ def _refuse_parts_of_tubes(scope: Scope, geometry: Geometry) -> None:
         given = scope.calculation.givens.get(value.symbol) if value is not None else None
         held = given.value if given is not None else value
         if held is not None and held.quantity is not None and held.quantity.value != int(held.quantity.value):
-            scope.collector.add("number-unreadable", held.place, f"`{key}` counts whole tubes or passes", found=shown(held.text),
-                                expected="a whole number")
+            scope.collector.add(
+                "number-unreadable",
+                held.place,
+                f"`{key}` counts whole tubes or passes",
+                found=shown(held.text),
+                expected="a whole number",
+            )
 
 
-def _bundle_checks(scope: Scope, geometry: Geometry, values: dict[str, str], tubes: str, length: str) -> tuple[ChainCheck, ...]:
+def _bundle_checks(
+    scope: Scope, geometry: Geometry, values: dict[str, str], tubes: str, length: str
+) -> tuple[ChainCheck, ...]:
     """That a bundle keeps open tubes, a tube or more for each pass, and an effective length within the length."""
     checks = []
 
     def check(name: str, that: str, because: str, **figures: str) -> None:
         if all(figures.values()):
-            limit = Limit(name, parse_expression(that), "stop", because, "common practice", "common practice", geometry.place)
+            limit = Limit(
+                name,
+                parse_expression(that),
+                "stop",
+                because,
+                "common practice",
+                "common practice",
+                geometry.place,
+            )
             checks.append(ChainCheck(f"geometry / bundle / {name}", "geometry", "bundle", limit, figures))
 
-    check("plugged", "N_plug < N_all", "some tubes are open", N_plug=values.get("plugged", ""), N_all=values.get("tubes", ""))
-    check("passes", "1 <= N_pass <= N_open", "each pass has a tube", N_pass=values.get("passes", ""), N_open=tubes)
+    check(
+        "plugged",
+        "N_plug < N_all",
+        "some tubes are open",
+        N_plug=values.get("plugged", ""),
+        N_all=values.get("tubes", ""),
+    )
+    check(
+        "passes",
+        "1 <= N_pass <= N_open",
+        "each pass has a tube",
+        N_pass=values.get("passes", ""),
+        N_open=tubes,
+    )
     if values.get("length"):
-        check("effective length", "L_eff <= L_t", "it is a part of the length", L_eff=values.get("effective length", ""),
-              L_t=length)
+        check(
+            "effective length",
+            "L_eff <= L_t",
+            "it is a part of the length",
+            L_eff=values.get("effective length", ""),
+            L_t=length,
+        )
     return tuple(checks)
 
 
@@ -272,20 +407,53 @@ def _tubes_in_parallel(scope: Scope, geometry: Geometry, values: dict[str, str],
     """The tubes that share the flow: the open tubes over the passes."""
     if not values.get("passes"):
         if "passes" not in geometry.dimensions:
-            scope.assume("geometry/passes", "The bundle has one tube pass.", "no number of passes is stated", "geometry")
+            scope.assume(
+                "geometry/passes",
+                "The bundle has one tube pass.",
+                "no number of passes is stated",
+                "geometry",
+            )
         return tubes
-    scope.assume("geometry/passes", "Open tubes are spread evenly over the passes.",
-                 "plugged tubes are stated for the whole bundle, not pass by pass", "geometry")
-    return scope.relation_step("geometry/tubes in parallel", "N", "tubes in parallel", "geometry",
-                               parse_expression("N_open/N_pass"), {"N_open": tubes, "N_pass": values["passes"]}, "bundle",
-                               "tubes in parallel")
+    scope.assume(
+        "geometry/passes",
+        "Open tubes are spread evenly over the passes.",
+        "plugged tubes are stated for the whole bundle, not pass by pass",
+        "geometry",
+    )
+    return scope.relation_step(
+        "geometry/tubes in parallel",
+        "N",
+        "tubes in parallel",
+        "geometry",
+        parse_expression("N_open/N_pass"),
+        {"N_open": tubes, "N_pass": values["passes"]},
+        "bundle",
+        "tubes in parallel",
+    )
 
 
-def _area(scope: Scope, shape: str, name: str, index: int, last: int, diameter: str, length: str, count: str) -> str:
+def _area(
+    scope: Scope, shape: str, name: str, index: int, last: int, diameter: str, length: str, count: str
+) -> str:
     mark = "i" if index == 0 else ("o" if index == last else str(index))
     if shape == "sphere":
-        return scope.relation_step(f"circuit/A_{mark}", f"A_{mark}", f"area, {name}", "circuit",
-                                   parse_expression(f"pi*d_{mark}**2"), {f"d_{mark}": diameter}, "geometry", "area")
-    return scope.relation_step(f"circuit/A_{mark}", f"A_{mark}", f"area, {name}", "circuit",
-                               parse_expression(f"pi*d_{mark}*L*N"), {f"d_{mark}": diameter, "L": length, "N": count},
-                               "geometry", "area")
+        return scope.relation_step(
+            f"circuit/A_{mark}",
+            f"A_{mark}",
+            f"area, {name}",
+            "circuit",
+            parse_expression(f"pi*d_{mark}**2"),
+            {f"d_{mark}": diameter},
+            "geometry",
+            "area",
+        )
+    return scope.relation_step(
+        f"circuit/A_{mark}",
+        f"A_{mark}",
+        f"area, {name}",
+        "circuit",
+        parse_expression(f"pi*d_{mark}*L*N"),
+        {f"d_{mark}": diameter, "L": length, "N": count},
+        "geometry",
+        "area",
+    )

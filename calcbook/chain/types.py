@@ -246,7 +246,9 @@ class StreamState:
 
     def operation(self, name: str, keeps_phase: bool = False) -> PropertyOperation:
         """The operation that gives a property of this stream, at the bulk or (``keeps_phase``) elsewhere."""
-        return PropertyOperation(self.fluid, name, self.phase, bool(self.pressure), bool(self.fraction), keeps_phase)
+        return PropertyOperation(
+            self.fluid, name, self.phase, bool(self.pressure), bool(self.fraction), keeps_phase
+        )
 
     def state_inputs(self, temperature: str) -> dict[str, str]:
         """The inputs of a property operation at a temperature."""

@@ -13,8 +13,18 @@ import importlib
 import click
 
 COMMANDS = (
-    "run", "new", "library", "verify", "schema", "sign", "issue", "revise", "register", "audit",
-    "compare", "recall",
+    "run",
+    "new",
+    "library",
+    "verify",
+    "schema",
+    "sign",
+    "issue",
+    "revise",
+    "register",
+    "audit",
+    "compare",
+    "recall",
 )
 
 
@@ -31,7 +41,9 @@ class _Commands(click.Group):
         return command
 
 
-@click.group(cls=_Commands, context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100})
+@click.group(
+    cls=_Commands, context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100}
+)
 @click.version_option(package_name="calcbook", message="calcbook %(version)s")
 def main() -> None:
     """Run controlled calculations of overall heat-transfer coefficients.

@@ -12,9 +12,19 @@ FINDINGS = 1
 
 
 @click.command("audit", short_help="Check files, records, sign-offs and issued copies of a book.")
-@click.argument("paths", nargs=-1, required=True, type=click.Path(path_type=Path, exists=True), metavar="FILE_OR_FOLDER...")
-@click.option("--output", type=click.Path(path_type=Path, file_okay=False), metavar="DIR",
-              help="Folder of the records; else the book's own, else ./output.")
+@click.argument(
+    "paths",
+    nargs=-1,
+    required=True,
+    type=click.Path(path_type=Path, exists=True),
+    metavar="FILE_OR_FOLDER...",
+)
+@click.option(
+    "--output",
+    type=click.Path(path_type=Path, file_okay=False),
+    metavar="DIR",
+    help="Folder of the records; else the book's own, else ./output.",
+)
 @click.option("--format", "form", type=click.Choice(["text", "markdown"]), default="text", show_default=True)
 def command(paths: tuple[Path, ...], output: Path | None, form: str) -> None:
     """Check that every file is valid, every record current, sign-offs valid for the content, issued copies

@@ -28,8 +28,12 @@ def _print(blocks) -> None:  # type: ignore[no-untyped-def]
 
 
 @command.command("list")
-@click.option("--cards", type=click.Path(path_type=Path, exists=True, file_okay=False), metavar="DIR",
-              help="A book's own cards, listed with the others.")
+@click.option(
+    "--cards",
+    type=click.Path(path_type=Path, exists=True, file_okay=False),
+    metavar="DIR",
+    help="A book's own cards, listed with the others.",
+)
 def list_cards(cards: Path | None) -> None:
     """List every situation with its methods, and every material."""
     from calcbook.record.library_pages import overview
@@ -38,10 +42,20 @@ def list_cards(cards: Path | None) -> None:
 
 
 @command.command("overview")
-@click.option("--output", type=click.Path(path_type=Path, file_okay=False), default=Path("output"), metavar="DIR",
-              show_default=True, help="Folder of library.md.")
-@click.option("--cards", type=click.Path(path_type=Path, exists=True, file_okay=False), metavar="DIR",
-              help="A book's own cards, counted in.")
+@click.option(
+    "--output",
+    type=click.Path(path_type=Path, file_okay=False),
+    default=Path("output"),
+    metavar="DIR",
+    show_default=True,
+    help="Folder of library.md.",
+)
+@click.option(
+    "--cards",
+    type=click.Path(path_type=Path, exists=True, file_okay=False),
+    metavar="DIR",
+    help="A book's own cards, counted in.",
+)
 def overview_page(output: Path, cards: Path | None) -> None:
     """Write library.md: every situation, its methods, their ranges as bars, accuracy, state and source."""
     from calcbook.files import write_whole
@@ -50,14 +64,20 @@ def overview_page(output: Path, cards: Path | None) -> None:
 
     library = _library(cards)
     write_whole(output / "library.md", markdown(library_overview(library)))
-    click.echo(f"situations {len(library.names('situations'))}, methods {len(library.names('methods'))},"
-               f" materials {len(library.names('materials'))}")
+    click.echo(
+        f"situations {len(library.names('situations'))}, methods {len(library.names('methods'))},"
+        f" materials {len(library.names('materials'))}"
+    )
 
 
 @command.command("family")
 @click.argument("name")
-@click.option("--cards", type=click.Path(path_type=Path, exists=True, file_okay=False), metavar="DIR",
-              help="A book's own cards, counted in.")
+@click.option(
+    "--cards",
+    type=click.Path(path_type=Path, exists=True, file_okay=False),
+    metavar="DIR",
+    help="A book's own cards, counted in.",
+)
 def family(name: str, cards: Path | None) -> None:
     """Show the page of the family NAME: methods that share an ancestor, their ranges, and where they act."""
     from calcbook.faults import nearest_names
@@ -74,8 +94,12 @@ def family(name: str, cards: Path | None) -> None:
 
 @command.command("show")
 @click.argument("name")
-@click.option("--cards", type=click.Path(path_type=Path, exists=True, file_okay=False), metavar="DIR",
-              help="A book's own cards, shown like the others.")
+@click.option(
+    "--cards",
+    type=click.Path(path_type=Path, exists=True, file_okay=False),
+    metavar="DIR",
+    help="A book's own cards, shown like the others.",
+)
 def show(name: str, cards: Path | None) -> None:
     """Show the page of the situation, method or material NAME."""
     from calcbook.faults import nearest_names

@@ -9,7 +9,9 @@ import click
 
 @click.command("new", short_help="Print a commented calculation file for a situation.")
 @click.argument("situation")
-@click.option("--shape", type=click.Choice(["tube", "plane", "sphere"]), help="Geometry; else the situation's first.")
+@click.option(
+    "--shape", type=click.Choice(["tube", "plane", "sphere"]), help="Geometry; else the situation's first."
+)
 def command(situation: str, shape: str | None) -> None:
     """Print a calculation file whose film is of SITUATION (see `calcbook library list`).
 

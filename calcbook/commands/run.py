@@ -18,11 +18,22 @@ FAULT, NOT_CONVERGED = 2, 3
 
 
 @click.command("run", short_help="Calculate files or folders and write their records.")
-@click.argument("paths", nargs=-1, required=True, type=click.Path(path_type=Path), metavar="FILE_OR_FOLDER...")
-@click.option("--output", type=click.Path(path_type=Path, file_okay=False), metavar="DIR",
-              help="Folder of the records; else the book's own, else ./output.")
-@click.option("--jobs", type=click.IntRange(1, 256), default=None, metavar="N",
-              help="Processes for a book of many calculations; else one a core.")
+@click.argument(
+    "paths", nargs=-1, required=True, type=click.Path(path_type=Path), metavar="FILE_OR_FOLDER..."
+)
+@click.option(
+    "--output",
+    type=click.Path(path_type=Path, file_okay=False),
+    metavar="DIR",
+    help="Folder of the records; else the book's own, else ./output.",
+)
+@click.option(
+    "--jobs",
+    type=click.IntRange(1, 256),
+    default=None,
+    metavar="N",
+    help="Processes for a book of many calculations; else one a core.",
+)
 def command(paths: tuple[Path, ...], output: Path | None, jobs: int | None) -> None:
     """Calculate every file (a folder: its *.yaml) and write record.md and results.json for each.
 
@@ -41,7 +52,9 @@ def command(paths: tuple[Path, ...], output: Path | None, jobs: int | None) -> N
         if outcome.faults:
             click.echo(str(Faults(outcome.faults)), err=True)
         elif outcome.not_converged:
-            click.echo(f"{outcome.name}: not-converged: {outcome.not_converged}; no record is written", err=True)
+            click.echo(
+                f"{outcome.name}: not-converged: {outcome.not_converged}; no record is written", err=True
+            )
     _summary([outcome for outcome in outcomes if outcome.is_written])
     if any(outcome.faults for outcome in outcomes):
         sys.exit(FAULT)
@@ -61,7 +74,9 @@ def _run(files: Sequence[Found], jobs: int) -> list[Outcome]:
 
 
 def _summary(outcomes: Sequence[Outcome]) -> None:
-    rows = [(item.number, item.revision, item.u_clean, item.u_service, str(item.open_items)) for item in outcomes]
+    rows = [
+        (item.number, item.revision, item.u_clean, item.u_service, str(item.open_items)) for item in outcomes
+    ]
     if not rows:
         return
     if sys.stdout.isatty():

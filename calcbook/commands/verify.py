@@ -11,10 +11,20 @@ FINDINGS = 1
 
 
 @click.command("verify", short_help="Run every check point on this installation.")
-@click.option("--output", type=click.Path(path_type=Path, file_okay=False), default=Path("output"), metavar="DIR",
-              show_default=True, help="Folder of verification.md.")
-@click.option("--cards", type=click.Path(path_type=Path, exists=True, file_okay=False), metavar="DIR",
-              help="A book's own cards, checked with the others.")
+@click.option(
+    "--output",
+    type=click.Path(path_type=Path, file_okay=False),
+    default=Path("output"),
+    metavar="DIR",
+    show_default=True,
+    help="Folder of verification.md.",
+)
+@click.option(
+    "--cards",
+    type=click.Path(path_type=Path, exists=True, file_okay=False),
+    metavar="DIR",
+    help="A book's own cards, checked with the others.",
+)
 def command(output: Path, cards: Path | None) -> None:
     """Run every check point of every card on this installation and write verification.md.
 
@@ -42,8 +52,10 @@ def command(output: Path, cards: Path | None) -> None:
     blocks = verification_blocks(software_line(), found.points, found.uncovered, found.trial, found.faults)
     write_whole(output / "verification.md", markdown(blocks))
     missed = sum(not point.holds for point in found.points)
-    click.echo(f"check points {len(found.points)}, not met {missed}, faults of cards {len(found.faults)},"
-               f" figures not covered {len(found.uncovered)}, cards on trial {len(found.trial)}")
+    click.echo(
+        f"check points {len(found.points)}, not met {missed}, faults of cards {len(found.faults)},"
+        f" figures not covered {len(found.uncovered)}, cards on trial {len(found.trial)}"
+    )
     if found.has_findings:
         for fault in found.faults:
             click.echo(fault, err=True)

@@ -95,8 +95,18 @@ class Library:
         if house is not None:
             return house, True
         singular = kind.removesuffix("s")
-        raise Faults([Fault(f"{singular}-unknown", Place(name), f"the library has no {singular} `{name}`", name,
-                            f"a {singular} of `calcbook library`", nearest_names(name, self.names(kind)))])
+        raise Faults(
+            [
+                Fault(
+                    f"{singular}-unknown",
+                    Place(name),
+                    f"the library has no {singular} `{name}`",
+                    name,
+                    f"a {singular} of `calcbook library`",
+                    nearest_names(name, self.names(kind)),
+                )
+            ]
+        )
 
 
 def _is_plain(name: str) -> bool:
@@ -132,7 +142,9 @@ def load_material(name: str) -> Material:
     return _library.material(name)
 
 
-def evaluate_method(card: Method, given: Mapping[str, object], library: Library | None = None) -> dict[str, float]:
+def evaluate_method(
+    card: Method, given: Mapping[str, object], library: Library | None = None
+) -> dict[str, float]:
     """Evaluate a method card on SI figures by its own symbols; returns every symbol it assigns.
 
     A use symbol (such as ``f``) may be given directly. Flags take True/False or yes/no, choices their
@@ -158,7 +170,7 @@ def bind_given(program: Program, given: Mapping[str, object]) -> dict[str, np.nd
             name = next((key for key, need in needs.items() if need.symbol == symbol), "")
         if not name:
             raise KeyError(f"{program.method.id} takes no `{symbol}`; it takes {', '.join(needs)}")
-        bound[name] = need_value(needs[name], str(figure)) if isinstance(figure, (str, bool)) else np.asarray(figure)
+        bound[name] = (
+            need_value(needs[name], str(figure)) if isinstance(figure, (str, bool)) else np.asarray(figure)
+        )
     return bound
-
-

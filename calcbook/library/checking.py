@@ -83,8 +83,11 @@ def material_points(card: Material) -> list[PointResult]:
         figures = {symbol: np.asarray(float(text)) for symbol, text in point.given.items()}
         got = table.mean(figures["T_1"], figures["T_2"]) if "T_1" in figures else table.value(figures["T"])
         text = ", ".join(f"{symbol} = {figure}" for symbol, figure in point.given.items())
-        results.append(PointResult(card.id, text, "k", point.gives["k"], float(got), point.within, point.source,
-                                   point.standing))
+        results.append(
+            PointResult(
+                card.id, text, "k", point.gives["k"], float(got), point.within, point.source, point.standing
+            )
+        )
     return results
 
 
@@ -95,9 +98,14 @@ def check_method(card: Method, library: Library) -> None:
     collector = Collector()
     for name in card.serves:
         if name not in library.names("situations"):
-            collector.add("situation-unknown", card.where, f"{card.id} serves `{name}`, which the library does not have",
-                          found=name, expected="a situation of `calcbook library`",
-                          nearest=nearest_names(name, library.names("situations")))
+            collector.add(
+                "situation-unknown",
+                card.where,
+                f"{card.id} serves `{name}`, which the library does not have",
+                found=name,
+                expected="a situation of `calcbook library`",
+                nearest=nearest_names(name, library.names("situations")),
+            )
     _check_count(card, collector)
     for point in card.check_points:
         try:
@@ -124,8 +132,12 @@ def check_situation(name: str, library: Library) -> None:
     collector = Collector()
     for choice in situation.choose:
         if choice.use not in situation.methods:
-            collector.add("method-unknown", choice.where, f"`{choice.use}` is not among the methods of the situation",
-                          expected=", ".join(situation.methods))
+            collector.add(
+                "method-unknown",
+                choice.where,
+                f"`{choice.use}` is not among the methods of the situation",
+                expected=", ".join(situation.methods),
+            )
     for method in situation.methods:
         try:
             library.program(method)
@@ -138,7 +150,10 @@ def check_situation(name: str, library: Library) -> None:
 
 def _check_friction(friction: Friction, library: Library, collector: Collector) -> None:
     """That the laws of a situation give a friction factor, and the card under `dp` a pressure drop."""
-    asked = (*((choice.use, "f", choice.where) for choice in friction.choose), (friction.dp, "dp", friction.where))
+    asked = (
+        *((choice.use, "f", choice.where) for choice in friction.choose),
+        (friction.dp, "dp", friction.where),
+    )
     for method, gives, where in asked:
         try:
             card = library.program(method).method
@@ -146,8 +161,13 @@ def _check_friction(friction: Friction, library: Library, collector: Collector) 
             collector.take(faults.faults)
             continue
         if card.gives != gives:
-            collector.add("method-not-friction", where, f"`{method}` gives {card.gives}, not {gives}",
-                          found=card.gives, expected=gives)
+            collector.add(
+                "method-not-friction",
+                where,
+                f"`{method}` gives {card.gives}, not {gives}",
+                found=card.gives,
+                expected=gives,
+            )
 
 
 def _check_count(card: Method | Material, collector: Collector) -> None:
@@ -155,16 +175,24 @@ def _check_count(card: Method | Material, collector: Collector) -> None:
     if len(card.check_points) < 2:
         collector.add("check-points-missing", card.where, f"{card.id} has fewer than two check points")
     if card.state.status == "checked" and not outside:
-        collector.add("card-unchecked", card.where, f"{card.id} is called checked without an outside check point",
-                      expected="a check point from outside the project, or state trial")
+        collector.add(
+            "card-unchecked",
+            card.where,
+            f"{card.id} is called checked without an outside check point",
+            expected="a check point from outside the project, or state trial",
+        )
 
 
 def _check_results(results: list[PointResult], point: CheckPoint, collector: Collector) -> None:
     for result in results:
         if not result.holds:
-            collector.add("check-point-failed", point.where,
-                          f"{result.card}: {result.symbol} deviates by {result.deviation:.3g}",
-                          found=repr(result.got), expected=f"{result.expected!r} within {result.within:g}")
+            collector.add(
+                "check-point-failed",
+                point.where,
+                f"{result.card}: {result.symbol} deviates by {result.deviation:.3g}",
+                found=repr(result.got),
+                expected=f"{result.expected!r} within {result.within:g}",
+            )
 
 
 def uncovered_constants(card: Method, library: Library) -> list[Uncovered]:
@@ -191,7 +219,11 @@ def _mutants(card: Method) -> Iterator[tuple[str, str, Method]]:
                 cells = table.cells.copy()
                 cells[row, column] *= MUTATION
                 tables = {**card.tables, table.name: replace(table, cells=cells)}
-                yield f"table {table.name}, row {row + 1}, {name}", table.texts[row][column], replace(card, tables=tables)
+                yield (
+                    f"table {table.name}, row {row + 1}, {name}",
+                    table.texts[row][column],
+                    replace(card, tables=tables),
+                )
 
 
 def _line_mutants(line: Line) -> Iterator[tuple[str, Line]]:
@@ -230,5 +262,3 @@ def _part_mutants(part: object) -> Iterator[tuple[str, object]]:
                 yield figure, (*part[:index], mutant, *part[index + 1 :])
     elif is_dataclass(part) and not isinstance(part, type):
         yield from _tree_mutants(part)  # type: ignore[arg-type]
-
-

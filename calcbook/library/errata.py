@@ -40,8 +40,11 @@ def read_errata(path: Path = ERRATA) -> tuple[Erratum, ...]:
     for item in node.items if isinstance(node, Sequence) else ():
         fields = read_mapping(item, ERRATUM, collector, item.place)
         versions = fields.node("versions")
-        names = tuple(one.text for one in versions.items if isinstance(one, Scalar)) if isinstance(
-            versions, Sequence) else ()
+        names = (
+            tuple(one.text for one in versions.items if isinstance(one, Scalar))
+            if isinstance(versions, Sequence)
+            else ()
+        )
         found.append(Erratum(fields.text("card"), names, fields.text("wrong"), fields.text("mended in")))
     collector.stop_if_any()
     return tuple(found)

@@ -113,19 +113,31 @@ def build_program(method: Method, find: Find, given: tuple[str, ...] = ()) -> Pr
         outside[symbol] = symbol
     scope = _lay_out(build, method, "", outside, (), {})
     build.collector.stop_if_any()
-    return Program(method, tuple(build.cards), tuple(build.needs.values()), build.constants,
-                   build.constant_dimensions, tuple(build.steps), tuple(build.limits), scope[method.gives], scope)
+    return Program(
+        method,
+        tuple(build.cards),
+        tuple(build.needs.values()),
+        build.constants,
+        build.constant_dimensions,
+        tuple(build.steps),
+        tuple(build.limits),
+        scope[method.gives],
+        scope,
+    )
 
 
-def _lay_out(build: _Build, method: Method, prefix: str, bound: Mapping[str, str],
-             above: tuple[str, ...], keys: Keys) -> dict[str, str]:
+def _lay_out(
+    build: _Build, method: Method, prefix: str, bound: Mapping[str, str], above: tuple[str, ...], keys: Keys
+) -> dict[str, str]:
     """Lay out one card under a prefix; returns its local symbols with their names in the program.
 
     ``keys`` are the figures of the enclosing cards by quantity and place: a used card takes what the card
     that uses it was given.
     """
     if method.id in above:
-        build.collector.add("use-circular", method.where, f"the card uses itself: {' uses '.join((*above, method.id))}")
+        build.collector.add(
+            "use-circular", method.where, f"the card uses itself: {' uses '.join((*above, method.id))}"
+        )
         raise Faults(build.collector)
     build.cards.append(method)
     scope: dict[str, str] = dict(bound)
@@ -141,15 +153,21 @@ def _lay_out(build: _Build, method: Method, prefix: str, bound: Mapping[str, str
         _lay_out_line(build, method, line, prefix, scope)
         waiting = _lay_out_uses(build, method, waiting, prefix, scope, (*above, method.id), inner, keys)
     for use in waiting:
-        build.collector.add("symbol-unknown", use.where, f"`{use.symbol}` is used with a symbol that nothing assigns",
-                            expected=", ".join(sorted(scope)))
+        build.collector.add(
+            "symbol-unknown",
+            use.where,
+            f"`{use.symbol}` is used with a symbol that nothing assigns",
+            expected=", ".join(sorted(scope)),
+        )
     build.collector.stop_if_any()
     _lay_out_limits(build, method, prefix, scope)
     for use, path in inner:
         if use.counts_when is not None:
             counting = Counting(use.counts_when, _inputs(build, use.counts_when, scope, use))
             build.limits[:] = [
-                replace(limit, counts_when=(counting, *limit.counts_when)) if limit.path.startswith(path) else limit
+                replace(limit, counts_when=(counting, *limit.counts_when))
+                if limit.path.startswith(path)
+                else limit
                 for limit in build.limits
             ]
     return scope
@@ -160,8 +178,15 @@ def _bind_need(build: _Build, need: Need, prefix: str, scope: dict[str, str], ke
         try:
             float(word)
         except ValueError:
-            scope.setdefault(word, _constant(build, f"word {word} of {','.join(need.one_of)}",
-                                             float(need.one_of.index(word)), DIMENSIONLESS))
+            scope.setdefault(
+                word,
+                _constant(
+                    build,
+                    f"word {word} of {','.join(need.one_of)}",
+                    float(need.one_of.index(word)),
+                    DIMENSIONLESS,
+                ),
+            )
     if need.symbol in scope:
         return
     name = keys.get(need.key) or build.by_key.get(need.key)
@@ -178,15 +203,27 @@ def _constant(build: _Build, name: str, value: float, dim: tuple) -> str:
     return name
 
 
-def _lay_out_uses(build: _Build, method: Method, waiting: list[Use], prefix: str, scope: dict[str, str],
-                  above: tuple[str, ...], inner: list[tuple[Use, str]], keys: Keys) -> list[Use]:
+def _lay_out_uses(
+    build: _Build,
+    method: Method,
+    waiting: list[Use],
+    prefix: str,
+    scope: dict[str, str],
+    above: tuple[str, ...],
+    inner: list[tuple[Use, str]],
+    keys: Keys,
+) -> list[Use]:
     """Lay out the used cards whose overrides are known by now; returns those that still wait."""
     still = []
     for use in waiting:
         card = build.find(use.method)
         words = {name: _word(card, name, relation) for name, relation in use.overrides.items()}
-        needed = [symbol for name, relation in use.overrides.items() if words[name] is None
-                  for symbol in relation.symbols]
+        needed = [
+            symbol
+            for name, relation in use.overrides.items()
+            if words[name] is None
+            for symbol in relation.symbols
+        ]
         if any(symbol not in scope for symbol in needed):
             still.append(use)
             continue
@@ -200,7 +237,9 @@ def _lay_out_uses(build: _Build, method: Method, waiting: list[Use], prefix: str
                 bound[name] = scope[relation.text.strip()]
             else:
                 inputs = {symbol: scope[symbol] for symbol in relation.symbols}
-                build.steps.append(ProgramStep(path + name, name, card.id, path, RelationOperation(relation), inputs))
+                build.steps.append(
+                    ProgramStep(path + name, name, card.id, path, RelationOperation(relation), inputs)
+                )
                 bound[name] = path + name
         used = _lay_out(build, card, path, bound, above, keys)
         scope[use.symbol] = used[card.gives]
@@ -234,8 +273,14 @@ def _lay_out_line(build: _Build, method: Method, line: Line, prefix: str, scope:
         operation = SumOperation(line)
     missing = [symbol for symbol in operation.symbols if symbol not in scope]
     for symbol in missing:
-        build.collector.add("symbol-unknown", line.where, f"`{symbol}` is not a need, constant, use or earlier line",
-                            found=symbol, expected=", ".join(sorted(scope)), nearest=nearest_names(symbol, scope))
+        build.collector.add(
+            "symbol-unknown",
+            line.where,
+            f"`{symbol}` is not a need, constant, use or earlier line",
+            found=symbol,
+            expected=", ".join(sorted(scope)),
+            nearest=nearest_names(symbol, scope),
+        )
     if not missing:
         name = prefix + line.symbol
         inputs = {symbol: scope[symbol] for symbol in operation.symbols}
@@ -243,15 +288,23 @@ def _lay_out_line(build: _Build, method: Method, line: Line, prefix: str, scope:
         scope[line.symbol] = name
 
 
-def _lay_out_lookup(build: _Build, method: Method, symbol: str, line: Line, prefix: str, scope: dict[str, str]) -> None:
+def _lay_out_lookup(
+    build: _Build, method: Method, symbol: str, line: Line, prefix: str, scope: dict[str, str]
+) -> None:
     table_name, dot, column = symbol.partition(".")
     if not dot or symbol in scope:
         return
     table = method.tables.get(table_name)
     if table is None or column not in table.columns:
         known = [f"{table.name}.{name}" for table in method.tables.values() for name in table.columns]
-        build.collector.add("symbol-unknown", line.where, f"there is no table column `{symbol}`", found=symbol,
-                            expected=", ".join(known), nearest=nearest_names(symbol, known))
+        build.collector.add(
+            "symbol-unknown",
+            line.where,
+            f"there is no table column `{symbol}`",
+            found=symbol,
+            expected=", ".join(known),
+            nearest=nearest_names(symbol, known),
+        )
         return
     operation = LookupOperation(table, column)
     if all(name in scope for name in operation.symbols):
@@ -262,17 +315,28 @@ def _lay_out_lookup(build: _Build, method: Method, symbol: str, line: Line, pref
 
 
 def _lay_out_limits(build: _Build, method: Method, prefix: str, scope: dict[str, str]) -> None:
-    for limit in (*method.limits, *(item for table in method.tables.values() for item in table_limits(table, method))):
+    for limit in (
+        *method.limits,
+        *(item for table in method.tables.values() for item in table_limits(table, method)),
+    ):
         inputs = _inputs(build, limit.that, scope, limit)
         if inputs is not None:
             build.limits.append(ProgramLimit(method.id, prefix, limit, inputs, ()))
 
 
-def _inputs(build: _Build, relation: Relation, scope: Mapping[str, str], owner: Limit | Use) -> dict[str, str]:
+def _inputs(
+    build: _Build, relation: Relation, scope: Mapping[str, str], owner: Limit | Use
+) -> dict[str, str]:
     for symbol in relation.symbols:
         if symbol not in scope:
-            build.collector.add("symbol-unknown", owner.where, f"`{symbol}` is not a symbol of this card",
-                                found=symbol, expected=", ".join(sorted(scope)), nearest=nearest_names(symbol, scope))
+            build.collector.add(
+                "symbol-unknown",
+                owner.where,
+                f"`{symbol}` is not a symbol of this card",
+                found=symbol,
+                expected=", ".join(sorted(scope)),
+                nearest=nearest_names(symbol, scope),
+            )
     return {symbol: scope[symbol] for symbol in relation.symbols if symbol in scope}
 
 
@@ -289,7 +353,9 @@ def table_limits(table: Table, method: Method) -> list[Limit]:
         last = table.cells[:, table.columns.index(high)].max()
         that = parse_expression(f"{float(first)!r} <= {symbol} <= {float(last)!r}")
         cite = method.sources[0].cite if method.sources else ""
-        result.append(Limit(f"table {table.name}", that, level, "end of the table", cite, standing, table.where))
+        result.append(
+            Limit(f"table {table.name}", that, level, "end of the table", cite, standing, table.where)
+        )
     return result
 
 
@@ -322,7 +388,11 @@ def check_dimensions(program: Program) -> None:
             collector.add("dimension-slip", item.limit.where, f"limit `{item.limit.id}`: {error.message}")
     expected = result_dimension(program.method.gives)
     if expected is not None and dims[program.result] != expected:
-        collector.add("dimension-slip", lines.get(program.method.gives, program.method.where), "the result has another dimension than its symbol")
+        collector.add(
+            "dimension-slip",
+            lines.get(program.method.gives, program.method.where),
+            "the result has another dimension than its symbol",
+        )
     collector.stop_if_any()
 
 

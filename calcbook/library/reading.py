@@ -6,6 +6,7 @@ import json
 import math
 from collections.abc import Iterable, Mapping
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 
@@ -89,8 +90,13 @@ class _Reader:
         self.collector.stop_if_any()
         self.id = self.fields.text(kind)
         if self.id != path.stem:
-            self.fault(self.fields.place_of(kind), "card-id-differs", "the id differs from the file name",
-                       found=self.id, expected=path.stem)
+            self.fault(
+                self.fields.place_of(kind),
+                "card-id-differs",
+                "the id differs from the file name",
+                found=self.id,
+                expected=path.stem,
+            )
 
     def fault(self, place: Place, code: str, message: str, **facts: object) -> None:
         self.collector.add(code, place, message, **facts)  # type: ignore[arg-type]
@@ -107,8 +113,12 @@ class _Reader:
             if isinstance(item, Scalar):
                 result.append(" ".join(item.text.split()))
             else:
-                self.fault(item.place, "value-not-text", f"an entry of `{name}` must be a single text",
-                           expected="the text in quotes if it holds `: `")
+                self.fault(
+                    item.place,
+                    "value-not-text",
+                    f"an entry of `{name}` must be a single text",
+                    expected="the text in quotes if it holds `: `",
+                )
         return tuple(result)
 
     def entries(self, name: str, fields: Fields | None = None) -> Iterable[tuple[Scalar, Node]]:
@@ -122,8 +132,13 @@ class _Reader:
         try:
             return parse_relation(node.text) if target else parse_expression(node.text)
         except RelationFault as error:
-            self.fault(node.place.part(error.column - 1, error.end_column - error.column), error.code,
-                       error.message, expected=error.expected, nearest=error.nearest)
+            self.fault(
+                node.place.part(error.column - 1, error.end_column - error.column),
+                error.code,
+                error.message,
+                expected=error.expected,
+                nearest=error.nearest,
+            )
             return None
 
     def number(self, node: Node | None, place: Place) -> float:
@@ -134,8 +149,13 @@ class _Reader:
                     return value
             except ValueError:
                 pass
-            self.fault(node.place, "number-unreadable", "this is no number", found=shown(node.text),
-                       expected="a number such as 0.023 or 1e4")
+            self.fault(
+                node.place,
+                "number-unreadable",
+                "this is no number",
+                found=shown(node.text),
+                expected="a number such as 0.023 or 1e4",
+            )
         elif node is not None:
             self.fault(place, "number-unreadable", "a number is wanted here")
         return math.nan
@@ -148,8 +168,12 @@ class _Reader:
             fields = self.record(item, described.SOURCE)
             result.append(Source(fields.text("cite"), fields.text("for"), fields.text("standing")))
         if not result:
-            self.fault(self.fields.place_of("sources"), "card-without-source", "a card names its sources",
-                       expected="at least one source with its standing")
+            self.fault(
+                self.fields.place_of("sources"),
+                "card-without-source",
+                "a card names its sources",
+                expected="at least one source with its standing",
+            )
         return tuple(result)
 
     def state(self) -> State:
@@ -157,8 +181,12 @@ class _Reader:
         fields = self.record(node, described.STATE) if node is not None else Fields(self.place)
         state = State(fields.text("is"), fields.text("since"), fields.text("successor"))
         if state.status == "withdrawn" and not state.successor:
-            self.fault(fields.place, "card-without-successor", "a withdrawn card names its successor",
-                       expected="successor: the id of the card that replaces it, or `none`")
+            self.fault(
+                fields.place,
+                "card-without-successor",
+                "a withdrawn card names its successor",
+                expected="successor: the id of the card that replaces it, or `none`",
+            )
         return state
 
     def check_points(self) -> tuple[CheckPoint, ...]:
@@ -171,7 +199,9 @@ class _Reader:
             if isinstance(gives_node, MappingNode):
                 gives = {key.text: self.number(value, key.place) for key, value in gives_node.entries}
             within = self.number(fields.node("within"), fields.place)
-            result.append(CheckPoint(given, gives, within, fields.text("source"), fields.text("standing"), item.place))
+            result.append(
+                CheckPoint(given, gives, within, fields.text("source"), fields.text("standing"), item.place)
+            )
         return tuple(result)
 
     def _texts_of(self, node: Node | None) -> dict[str, str]:
@@ -187,25 +217,41 @@ class _Reader:
             else:
                 fields = self.record(value, described.NEED)
                 options = fields.node("one of")
-                words = tuple(item.text for item in options.items if isinstance(item, Scalar)) if isinstance(
-                    options, Sequence) else ()
+                words = (
+                    tuple(item.text for item in options.items if isinstance(item, Scalar))
+                    if isinstance(options, Sequence)
+                    else ()
+                )
                 absent = fields.text("absent") if "absent" in fields else None
                 need = self._need(key, fields.text("is"), value.place, words, absent)
             if need is not None:
                 result.append(need)
         return tuple(result)
 
-    def _need(self, key: Scalar, text: str, place: Place, one_of: tuple[str, ...], absent: str | None) -> Need | None:
+    def _need(
+        self, key: Scalar, text: str, place: Place, one_of: tuple[str, ...], absent: str | None
+    ) -> Need | None:
         name, _, where = text.partition(" at ")
         quantity = vocabulary().get(name.strip())
         if quantity is None:
-            self.fault(place, "quantity-unknown", f"the vocabulary has no quantity `{shown(name)}`",
-                       found=shown(name), expected="a quantity of vocabulary.yaml, then ` at ` and one of "
-                       + ", ".join(PLACES), nearest=nearest_names(name, vocabulary()))
+            self.fault(
+                place,
+                "quantity-unknown",
+                f"the vocabulary has no quantity `{shown(name)}`",
+                found=shown(name),
+                expected="a quantity of vocabulary.yaml, then ` at ` and one of " + ", ".join(PLACES),
+                nearest=nearest_names(name, vocabulary()),
+            )
             return None
         if where and where.strip() not in PLACES:
-            self.fault(place, "place-unknown", f"properties cannot be taken at `{shown(where)}`", found=shown(where),
-                       expected=" | ".join(PLACES), nearest=nearest_names(where, PLACES))
+            self.fault(
+                place,
+                "place-unknown",
+                f"properties cannot be taken at `{shown(where)}`",
+                found=shown(where),
+                expected=" | ".join(PLACES),
+                nearest=nearest_names(where, PLACES),
+            )
             return None
         return Need(key.text, quantity, where.strip(), key.place, one_of, absent)
 
@@ -236,15 +282,35 @@ class _Reader:
             house=house,
             where=self.fields.place,
             serves=self._serves(house),
-            digest_text=self._digest_text(("needs", "constants", "uses", "tables", "relations", "limits",
-                                           "properties at", "closes on", "gives")),
+            digest_text=self._digest_text(
+                (
+                    "needs",
+                    "constants",
+                    "uses",
+                    "tables",
+                    "relations",
+                    "limits",
+                    "properties at",
+                    "closes on",
+                    "gives",
+                )
+            ),
         )
         if method.gives == "Nu" and not method.properties_at:
-            self.fault(self.place, "key-missing", "a method that gives Nu says where its conductivity is taken",
-                       expected="properties at: bulk | film | surface")
+            self.fault(
+                self.place,
+                "key-missing",
+                "a method that gives Nu says where its conductivity is taken",
+                expected="properties at: bulk | film | surface",
+            )
         if method.lines and method.lines[-1].symbol != method.gives:
-            self.fault(method.lines[-1].where, "card-result-differs", "the last relation does not give the result",
-                       found=method.lines[-1].symbol, expected=method.gives)
+            self.fault(
+                method.lines[-1].where,
+                "card-result-differs",
+                "the last relation does not give the result",
+                found=method.lines[-1].symbol,
+                expected=method.gives,
+            )
         return method
 
     def _constants(self) -> dict[str, tuple[float, str, tuple]]:
@@ -257,8 +323,14 @@ class _Reader:
                 quantity = read_any(value.text)
                 result[key.text] = (quantity.value, " ".join(value.text.split()), quantity.dimension)
             except QuantityFault as error:
-                self.fault(value.place, error.code, error.message, found=error.found, expected=error.expected,
-                           nearest=error.nearest)
+                self.fault(
+                    value.place,
+                    error.code,
+                    error.message,
+                    found=error.found,
+                    expected=error.expected,
+                    nearest=error.nearest,
+                )
         return result
 
     def _uses(self) -> tuple[Use, ...]:
@@ -292,13 +364,22 @@ class _Reader:
             texts = self._rows(rows_node, columns)
             for symbol, way in by.items():
                 if way not in ("exact", "step", "linear", "log-log"):
-                    self.fault(fields.place_of("by"), "choice-unknown", f"a table is not found by `{shown(way)}`",
-                               found=shown(way), expected="exact | step | linear | log-log")
+                    self.fault(
+                        fields.place_of("by"),
+                        "choice-unknown",
+                        f"a table is not found by `{shown(way)}`",
+                        found=shown(way),
+                        expected="exact | step | linear | log-log",
+                    )
                 wanted = ("from", "to") if way == "step" else (symbol,)
                 for column in wanted:
                     if column not in columns:
-                        self.fault(columns_node.place, "table-column-missing", f"the table lacks the column `{column}`",
-                                   expected=", ".join(wanted))
+                        self.fault(
+                            columns_node.place,
+                            "table-column-missing",
+                            f"the table lacks the column `{column}`",
+                            expected=", ".join(wanted),
+                        )
             cells = self._cells(texts, columns, words, rows_node)
             result[key.text] = Table(key.text, by, fields.text("outside"), columns, cells, texts, key.place)
         return result
@@ -307,14 +388,23 @@ class _Reader:
         result = []
         for row in rows.items:
             if not isinstance(row, Sequence) or len(row.items) != len(columns):
-                self.fault(row.place, "table-row-length", "the row does not fit the columns",
-                           expected=f"{len(columns)} figures: {', '.join(columns)}")
+                self.fault(
+                    row.place,
+                    "table-row-length",
+                    "the row does not fit the columns",
+                    expected=f"{len(columns)} figures: {', '.join(columns)}",
+                )
                 continue
             result.append(tuple(item.text for item in row.items if isinstance(item, Scalar)))
         return tuple(result)
 
-    def _cells(self, texts: tuple[tuple[str, ...], ...], columns: tuple[str, ...],
-               words: Mapping[str, tuple[str, ...]], rows: Sequence) -> np.ndarray:
+    def _cells(
+        self,
+        texts: tuple[tuple[str, ...], ...],
+        columns: tuple[str, ...],
+        words: Mapping[str, tuple[str, ...]],
+        rows: Sequence,
+    ) -> np.ndarray:
         cells = np.full((len(texts), len(columns)), np.nan)
         for number, row in enumerate(texts):
             for index, text in enumerate(row):
@@ -322,8 +412,13 @@ class _Reader:
                 try:
                     cells[number, index] = choice_number(text, options)
                 except ValueError:
-                    self.fault(rows.items[number].place, "number-unreadable", "a cell of the table is no number",
-                               found=shown(text), expected="a number, or a word of the choice")
+                    self.fault(
+                        rows.items[number].place,
+                        "number-unreadable",
+                        "a cell of the table is no number",
+                        found=shown(text),
+                        expected="a number, or a word of the choice",
+                    )
         return cells
 
     def _lines(self) -> tuple[Line, ...]:
@@ -346,16 +441,21 @@ class _Reader:
                 return self._solve(self.record(value, described.SOLVE), item.place)
             if key.text == "sum":
                 return self._sum(self.record(value, described.SUM), item.place)
-        self.fault(item.place, "relation-syntax", "a line of `relations` is a relation, a solve or a sum",
-                   expected="`x = …`, `solve: {…}` or `sum: {…}`; quote a text that holds `: `")
+        self.fault(
+            item.place,
+            "relation-syntax",
+            "a line of `relations` is a relation, a solve or a sum",
+            expected="`x = …`, `solve: {…}` or `sum: {…}`; quote a text that holds `: `",
+        )
         return None
 
     def _solve(self, fields: Fields, place: Place) -> Solve | None:
         equation = self.relation(scalar) if (scalar := fields.scalar("equation")) is not None else None
         between = fields.node("between")
         if equation is None or not isinstance(between, Sequence) or len(between.items) != 2:
-            self.fault(place, "solve-bounds", "a solve names two bounds and an equation",
-                       expected="between: [1, 30]")
+            self.fault(
+                place, "solve-bounds", "a solve names two bounds and an equation", expected="between: [1, 30]"
+            )
             return None
         bounds = tuple(self.number(item, item.place) for item in between.items)
         start = self.number(fields.node("start"), fields.place)
@@ -382,10 +482,16 @@ class _Reader:
                 self.fault(fields.place_of("id"), "limit-twice", f"two limits are called `{shown(name)}`")
             seen.add(name)
             if not that.symbols:
-                self.fault(fields.place_of("that"), "limit-without-symbol", "a limit names at least one symbol",
-                           found=shown(that.text))
+                self.fault(
+                    fields.place_of("that"),
+                    "limit-without-symbol",
+                    "a limit names at least one symbol",
+                    found=shown(that.text),
+                )
             cite, standing = self._limit_source(fields, sources)
-            result.append(Limit(name, that, fields.text("level"), fields.text("because"), cite, standing, item.place))
+            result.append(
+                Limit(name, that, fields.text("level"), fields.text("because"), cite, standing, item.place)
+            )
         return tuple(result)
 
     def _limit_source(self, fields: Fields, sources: tuple[Source, ...]) -> tuple[str, str]:
@@ -396,8 +502,13 @@ class _Reader:
         if text.isdigit() and 1 <= int(text) <= len(sources):
             source = sources[int(text) - 1]
             return source.cite, override or source.standing
-        self.fault(fields.place_of("source"), "limit-source-unknown", "the limit's source is not among the sources",
-                   found=shown(text), expected=f"1 to {len(sources)}, `common practice` or `from memory`")
+        self.fault(
+            fields.place_of("source"),
+            "limit-source-unknown",
+            "the limit's source is not among the sources",
+            found=shown(text),
+            expected=f"1 to {len(sources)}, `common practice` or `from memory`",
+        )
         return text, override or "from memory"
 
     def _accuracy(self) -> Accuracy | None:
@@ -405,8 +516,9 @@ class _Reader:
         if node is None:
             return None
         fields = self.record(node, described.ACCURACY)
-        return Accuracy(fields.text("within"), fields.text("coverage"), fields.text("stated by"),
-                        fields.text("standing"))
+        return Accuracy(
+            fields.text("within"), fields.text("coverage"), fields.text("stated by"), fields.text("standing")
+        )
 
     # -- situation ----------------------------------------------------------------------------------
 
@@ -430,8 +542,18 @@ class _Reader:
             assumes=self.texts("assumes"),
             sources=self.sources(),
             where=self.fields.place,
-            digest_text=self._digest_text(("changes phase", "needs", "flow area", "characteristic length", "groups",
-                                           "choose", "choose at", "friction")),
+            digest_text=self._digest_text(
+                (
+                    "changes phase",
+                    "needs",
+                    "flow area",
+                    "characteristic length",
+                    "groups",
+                    "choose",
+                    "choose at",
+                    "friction",
+                )
+            ),
             changes_phase=self.fields.text("changes phase"),
             friction=self._friction(),
         )
@@ -439,8 +561,13 @@ class _Reader:
     def _serves(self, house: bool) -> tuple[str, ...]:
         """Situations that a book's own method is made for; a card of the library is listed in the situation itself."""
         if "serves" in self.fields and not house:
-            self.fault(self.fields.place_of("serves"), "key-unknown", "only a book's own card says what it serves",
-                       found="serves", expected="the method in the list of the situation's card")
+            self.fault(
+                self.fields.place_of("serves"),
+                "key-unknown",
+                "only a book's own card says what it serves",
+                found="serves",
+                expected="the method in the list of the situation's card",
+            )
         return self.texts("serves")
 
     def _friction(self) -> Friction | None:
@@ -448,7 +575,9 @@ class _Reader:
         if node is None:
             return None
         fields = self.record(node, described.FRICTION)
-        return Friction(self.needs(fields), self._groups(fields), self._choices(fields), fields.text("dp"), node.place)
+        return Friction(
+            self.needs(fields), self._groups(fields), self._choices(fields), fields.text("dp"), node.place
+        )
 
     def _groups(self, within: Fields | None = None) -> tuple[Group, ...]:
         result = []
@@ -458,8 +587,13 @@ class _Reader:
             scalar = fields.scalar("relation")
             relation = self.relation(scalar) if scalar is not None else None
             if quantity is None:
-                self.fault(fields.place_of("is"), "quantity-unknown", "the vocabulary has no such quantity",
-                           found=fields.text("is"), nearest=nearest_names(fields.text("is"), vocabulary()))
+                self.fault(
+                    fields.place_of("is"),
+                    "quantity-unknown",
+                    "the vocabulary has no such quantity",
+                    found=fields.text("is"),
+                    nearest=nearest_names(fields.text("is"), vocabulary()),
+                )
             elif relation is not None:
                 result.append(Group(key.text, quantity, relation, key.place))
         return tuple(result)
@@ -472,8 +606,12 @@ class _Reader:
             when = self.relation(scalar) if scalar is not None else None
             result.append(Choice(when, fields.text("use"), fields.text("because"), item.place))
         if result and result[-1].when is not None:
-            self.fault(result[-1].where, "choice-without-end", "the last row of the choice table has no condition",
-                       expected="a last row without `when`")
+            self.fault(
+                result[-1].where,
+                "choice-without-end",
+                "the last row of the choice table has no condition",
+                expected="a last row without `when`",
+            )
         return tuple(result)
 
     # -- material -----------------------------------------------------------------------------------
@@ -484,7 +622,9 @@ class _Reader:
         temperatures = self._column(table, "T", "temperature")
         conductivities = self._column(table, "k", "wall conductivity")
         if len(temperatures) != len(conductivities):
-            self.fault(table.place, "table-row-length", "the table has not as many conductivities as temperatures")
+            self.fault(
+                table.place, "table-row-length", "the table has not as many conductivities as temperatures"
+            )
         if np.any(np.diff(temperatures) <= 0):
             self.fault(table.place, "table-not-rising", "the temperatures do not rise")
         spread_node = self.fields.node("spread")
@@ -517,13 +657,19 @@ class _Reader:
             try:
                 values.append(read_quantity(item.text, vocabulary()[quantity]).value)
             except QuantityFault as error:
-                self.fault(item.place, error.code, error.message, found=error.found, expected=error.expected,
-                           nearest=error.nearest)
+                self.fault(
+                    item.place,
+                    error.code,
+                    error.message,
+                    found=error.found,
+                    expected=error.expected,
+                    nearest=error.nearest,
+                )
         return np.array(values, dtype=float)
 
     def _digest_text(self, names: tuple[str, ...]) -> str:
         """What of a card decides numbers, as canonical text: relations, tables, constants, limits."""
-        parts = {name: plain(self.fields.node(name)) for name in names if name in self.fields}
+        parts: dict[str, Any] = {name: plain(self.fields.node(name)) for name in names if name in self.fields}
         if "limits" in parts:
             parts["limits"] = [{key: row[key] for key in ("id", "that", "level")} for row in parts["limits"]]
         return json.dumps(parts, sort_keys=True, ensure_ascii=False, separators=(",", ":"))

@@ -1,9 +1,9 @@
-"""Properties of fluids: pure fluids, mixtures, tables, stated constants; values and slopes on SI arrays.
+"""Properties of fluids: pure fluids, mixtures, humid air, tables, stated constants, rules over a relative density.
 
 A fluid is made by ``pure``, ``mixture``, ``humid_air``, ``tabulated``, ``related`` or ``constant``;
-``.at(pressure, phase)`` gives the object that answers. Backend fluids are answered from Chebyshev series that were compared with the
-backend when made, and are kept in the user's cache folder: a repeat run gets the same bits and does not
-import the backend.
+``.at(pressure, phase)`` gives the object that answers. Backend fluids are answered from Chebyshev series that
+were compared with the backend when made, and are kept in the user's cache folder: a repeat run gets the same
+bits and does not import the backend.
 
 May import: the standard library, numpy, platformdirs, CoolProp (inside functions) and ``calcbook.faults``.
 Must never: know a unit, read a calculation file, or let another room import CoolProp.

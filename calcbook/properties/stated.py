@@ -349,7 +349,9 @@ def _viscosity(
     kinematic = values if key == KINEMATIC else values / density.value(at)
     chosen = astm_d341(list(zip(at.tolist(), kinematic.tolist(), strict=True)))
     low, high = spans[key]
-    return _LawColumn(chosen, density), _meeting(density, (low - LAW_REACH, high + LAW_REACH), spans["density"])
+    return _LawColumn(chosen, density), _meeting(
+        density, (low - LAW_REACH, high + LAW_REACH), spans["density"]
+    )
 
 
 def _meeting(

@@ -32,15 +32,22 @@ def overview(library: Library) -> tuple[Block, ...]:
     for name in library.names("situations"):
         situation = library.situation(name)
         blocks.append(Heading(3, f"{name}: {situation.title}"))
-        rows = [(method, library.method(method).title, library.method(method).family, library.method(method).state.status)
-                for method in situation.methods]
+        rows = [
+            (
+                method,
+                library.method(method).title,
+                library.method(method).family,
+                library.method(method).state.status,
+            )
+            for method in situation.methods
+        ]
         blocks.append(TableBlock(("Method", "Title", "Family", "State"), tuple(rows)))
     blocks.append(Heading(2, "Materials"))
-    rows = []
+    materials: list[tuple[str, ...]] = []
     for name in library.names("materials"):
         card = library.material(name)
-        rows.append((name, card.title, card.kind, _temperatures(card), card.standing, card.state.status))
-    blocks.append(TableBlock(("Material", "Title", "Kind", "Range", "Standing", "State"), tuple(rows)))
+        materials.append((name, card.title, card.kind, _temperatures(card), card.standing, card.state.status))
+    blocks.append(TableBlock(("Material", "Title", "Kind", "Range", "Standing", "State"), tuple(materials)))
     return tuple(blocks)
 
 
@@ -58,17 +65,24 @@ def page(library: Library, name: str) -> tuple[Block, ...] | None:
 def situation_page(card: Situation) -> tuple[Block, ...]:
     """One situation: what it needs, the groups it forms, the choice between its methods."""
     groups = tuple((group.symbol, group.quantity.name, write(group.relation)) for group in card.groups)
-    choices = tuple((write(choice.when) if choice.when is not None else "otherwise", choice.use, choice.because)
-                    for choice in card.choose)
+    choices = tuple(
+        (write(choice.when) if choice.when is not None else "otherwise", choice.use, choice.because)
+        for choice in card.choose
+    )
     blocks: list[Block] = [
         Heading(1, card.title),
-        Paragraph(f"Situation {card.id}; {card.flow} flow; on the {' or '.join(card.surfaces)} of a"
-                  f" {' or '.join(card.shapes)}."),
+        Paragraph(
+            f"Situation {card.id}; {card.flow} flow; on the {' or '.join(card.surfaces)} of a"
+            f" {' or '.join(card.shapes)}."
+        ),
         Heading(2, "Needs"),
         TableBlock(("Symbol", "Quantity", "Unit", "Choice"), _needs(card.needs)),
         Heading(2, "Groups"),
-        TableBlock(("Symbol", "Quantity", "Relation"), groups,
-                   (f"Characteristic length L_c = {write(card.characteristic_length)}.",)),
+        TableBlock(
+            ("Symbol", "Quantity", "Relation"),
+            groups,
+            (f"Characteristic length L_c = {write(card.characteristic_length)}.",),
+        ),
         Heading(2, f"Choice of method (groups at {card.choose_at} temperature)"),
         TableBlock(("When", "Method", "Because"), choices),
         Heading(2, "Methods"),
@@ -86,47 +100,93 @@ def _friction(card: Situation) -> list[Block]:
     friction = card.friction
     if friction is None:
         return []
-    blocks: list[Block] = [Heading(2, "Pressure drop beside the film"), Paragraph(f"Added up by {friction.dp}.")]
+    blocks: list[Block] = [
+        Heading(2, "Pressure drop beside the film"),
+        Paragraph(f"Added up by {friction.dp}."),
+    ]
     if friction.needs:
         blocks.append(TableBlock(("Symbol", "Quantity", "Unit", "Choice"), _needs(friction.needs)))
     if friction.groups:
-        blocks.append(TableBlock(("Symbol", "Quantity", "Relation"), tuple(
-            (group.symbol, group.quantity.name, write(group.relation)) for group in friction.groups)))
+        blocks.append(
+            TableBlock(
+                ("Symbol", "Quantity", "Relation"),
+                tuple(
+                    (group.symbol, group.quantity.name, write(group.relation)) for group in friction.groups
+                ),
+            )
+        )
     if friction.choose:
-        blocks.append(TableBlock(("When", "Friction law", "Because"), tuple(
-            (write(choice.when) if choice.when is not None else "otherwise", choice.use, choice.because)
-            for choice in friction.choose)))
+        blocks.append(
+            TableBlock(
+                ("When", "Friction law", "Because"),
+                tuple(
+                    (
+                        write(choice.when) if choice.when is not None else "otherwise",
+                        choice.use,
+                        choice.because,
+                    )
+                    for choice in friction.choose
+                ),
+            )
+        )
     return blocks
 
 
 def method_page(card: Method) -> tuple[Block, ...]:
     """One method: needs, relations, limits, accuracy, check points, sources."""
-    at = f" The conductivity of h = Nu·λ/L_c is taken at {card.properties_at} temperature." if card.properties_at else ""
-    closes = {"nothing": "Nothing of the solution is needed.", "surface": "It needs the temperature of the surface.",
-              "flux": "It needs the heat flux."}[card.closes_on]
+    at = (
+        f" The conductivity of h = Nu·λ/L_c is taken at {card.properties_at} temperature."
+        if card.properties_at
+        else ""
+    )
+    closes = {
+        "nothing": "Nothing of the solution is needed.",
+        "surface": "It needs the temperature of the surface.",
+        "flux": "It needs the heat flux.",
+    }[card.closes_on]
     blocks: list[Block] = [
         Heading(1, card.title),
         *((Paragraph("A book's own card: house method."),) if card.house else ()),
-        Paragraph(f"Method {card.id}; family {card.family}; state {card.state.status} since {card.state.since}."
-                  f" Gives {card.gives}. {closes}{at}"),
+        Paragraph(
+            f"Method {card.id}; family {card.family}; state {card.state.status} since {card.state.since}."
+            f" Gives {card.gives}. {closes}{at}"
+        ),
         Heading(2, "Needs"),
         TableBlock(("Symbol", "Quantity", "Unit", "Choice"), _needs(card.needs)),
         Heading(2, "Relations"),
-        Code("\n".join([*(f"{symbol} = {text}" for symbol, (_, text, _) in card.constants.items()),
-                        *(f"{use.symbol} from {use.method}" for use in card.uses),
-                        *(_line(line) for line in card.lines)])),
+        Code(
+            "\n".join(
+                [
+                    *(f"{symbol} = {text}" for symbol, (_, text, _) in card.constants.items()),
+                    *(f"{use.symbol} from {use.method}" for use in card.uses),
+                    *(_line(line) for line in card.lines),
+                ]
+            )
+        ),
         *(block for table in card.tables.values() for block in _table(table)),
         Heading(2, "Limits"),
-        TableBlock(("Limit", "That", "Level", "Because", "Source", "Standing"), tuple(_limit(one) for one in card.limits)),
+        TableBlock(
+            ("Limit", "That", "Level", "Because", "Source", "Standing"),
+            tuple(_limit(one) for one in card.limits),
+        ),
         Heading(2, "Accuracy"),
         Paragraph(_accuracy(card)),
         Heading(2, "Assumes"),
         Bullets(card.assumes),
         Heading(2, "Check points"),
-        TableBlock(("Given", "Gives", "Within", "Source", "Standing"), tuple(
-            (", ".join(f"{symbol} = {text}" for symbol, text in point.given.items()),
-             ", ".join(f"{symbol} = {value!r}" for symbol, value in point.gives.items()),
-             f"{point.within:g}", point.source, point.standing) for point in card.check_points)),
+        TableBlock(
+            ("Given", "Gives", "Within", "Source", "Standing"),
+            tuple(
+                (
+                    ", ".join(f"{symbol} = {text}" for symbol, text in point.given.items()),
+                    ", ".join(f"{symbol} = {value!r}" for symbol, value in point.gives.items()),
+                    f"{point.within:g}",
+                    point.source,
+                    point.standing,
+                )
+                for point in card.check_points
+            ),
+        ),
         *_sources(card.sources),
         *_notes(card.notes),
     ]
@@ -135,15 +195,26 @@ def method_page(card: Method) -> tuple[Block, ...]:
 
 def material_page(card: Material) -> tuple[Block, ...]:
     """One material: conductivity against temperature, spread, sources."""
-    rows = tuple((number_text(temperature - ICE_POINT, 5), number_text(temperature, 5), number_text(conductivity, 4))
-                 for temperature, conductivity in zip(card.temperatures.tolist(), card.conductivities.tolist(), strict=True))
+    rows = tuple(
+        (number_text(temperature - ICE_POINT, 5), number_text(temperature, 5), number_text(conductivity, 4))
+        for temperature, conductivity in zip(
+            card.temperatures.tolist(), card.conductivities.tolist(), strict=True
+        )
+    )
     return (
         Heading(1, card.title),
-        Paragraph(f"Material {card.id}; {card.kind}; standing {card.standing}; state {card.state.status} since"
-                  f" {card.state.since}. Spread between sources: {card.spread} ({card.spread_because})."),
-        TableBlock(("T, °C", "T, K", "k, W/(m·K)"), rows,
-                   ("Straight between the rows; beyond them the nearest row is held"
-                    + (", and that is an open item." if card.outside == "open item" else "."),)),
+        Paragraph(
+            f"Material {card.id}; {card.kind}; standing {card.standing}; state {card.state.status} since"
+            f" {card.state.since}. Spread between sources: {card.spread} ({card.spread_because})."
+        ),
+        TableBlock(
+            ("T, °C", "T, K", "k, W/(m·K)"),
+            rows,
+            (
+                "Straight between the rows; beyond them the nearest row is held"
+                + (", and that is an open item." if card.outside == "open item" else "."),
+            ),
+        ),
         *_sources(card.sources),
         *_notes(card.notes),
     )
@@ -168,12 +239,24 @@ def faults_page() -> tuple[Block, ...]:
 
 def bands_page() -> tuple[Block, ...]:
     """Every plausible band, in the order of the calculation: dimensions, walls, films, speeds, results."""
-    rows = tuple((band.name, band.quantity.name, band.place, _range(band.texts), band.because, band.source, band.standing)
-                 for band in bands().values())
+    rows = tuple(
+        (
+            band.name,
+            band.quantity.name,
+            band.place,
+            _range(band.texts),
+            band.because,
+            band.source,
+            band.standing,
+        )
+        for band in bands().values()
+    )
     return (
         Heading(1, "Plausible bands"),
-        Paragraph("A figure outside its band is a caution of the record that names the band. It blocks nothing, and no"
-                  " figure is ever filled in from here."),
+        Paragraph(
+            "A figure outside its band is a caution of the record that names the band. It blocks nothing, and no"
+            " figure is ever filled in from here."
+        ),
         TableBlock(("Band", "Quantity", "Place", "Usual", "Because", "Source", "Standing"), rows),
     )
 
@@ -182,9 +265,11 @@ def allowances_page() -> tuple[Block, ...]:
     """Typical fouling allowances and typical coefficients, each with its publication and standing."""
     blocks: list[Block] = [
         Heading(1, "Typical fouling allowances and coefficients"),
-        Paragraph("They are for reading, and to warn where a stated figure lies far from what is typical of the service"
-                  " that the calculation names with `service:` on the fouling term or in `report:`. No allowance is ever"
-                  " filled in."),
+        Paragraph(
+            "They are for reading, and to warn where a stated figure lies far from what is typical of the service"
+            " that the calculation names with `service:` on the fouling term or in `report:`. No allowance is ever"
+            " filled in."
+        ),
     ]
     for card in allowance_cards().values():
         blocks += _allowances(card)
@@ -193,7 +278,9 @@ def allowances_page() -> tuple[Block, ...]:
 
 def emissivities_page() -> tuple[Block, ...]:
     """Emissivities of surfaces, each with its publication and standing."""
-    rows = tuple((one.surface, one.temperature, one.emissivity, one.source, one.standing) for one in emissivities())
+    rows = tuple(
+        (one.surface, one.temperature, one.emissivity, one.source, one.standing) for one in emissivities()
+    )
     return (
         Heading(1, "Emissivities"),
         Paragraph("They are for reading: a calculation states its emissivity with a source."),
@@ -203,8 +290,17 @@ def emissivities_page() -> tuple[Block, ...]:
 
 def _allowances(card: AllowanceCard) -> list[Block]:
     numbers = {source: str(number) for number, source in enumerate(card.sources, 1)}
-    rows = tuple((row.service, row.side, _range(row.texts), numbers[row.publication], row.publication.standing, row.note)
-                 for row in card.rows)
+    rows = tuple(
+        (
+            row.service,
+            row.side,
+            _range(row.texts),
+            numbers[row.publication],
+            row.publication.standing,
+            row.note,
+        )
+        for row in card.rows
+    )
     note = f"Warned of beyond a factor of {card.far:g} outside the range of all publications of a service."
     sources = tuple(f"{number}: {source.cite} ({source.standing})" for source, number in numbers.items())
     return [
@@ -246,7 +342,10 @@ def _line(line: Line) -> str:
 
 def _table(table: Table) -> list[Block]:
     by = ", ".join(f"{symbol} ({way})" for symbol, way in table.by.items())
-    return [Heading(3, f"Table {table.name}"), TableBlock(table.columns, table.texts, (f"Found by {by}; outside: {table.outside}.",))]
+    return [
+        Heading(3, f"Table {table.name}"),
+        TableBlock(table.columns, table.texts, (f"Found by {by}; outside: {table.outside}.",)),
+    ]
 
 
 def _limit(limit: Limit) -> tuple[str, ...]:
@@ -261,7 +360,10 @@ def _accuracy(card: Method) -> str:
 
 
 def _sources(sources: tuple[Source, ...]) -> list[Block]:
-    rows = tuple((str(number), source.cite, source.supports, source.standing) for number, source in enumerate(sources, 1))
+    rows = tuple(
+        (str(number), source.cite, source.supports, source.standing)
+        for number, source in enumerate(sources, 1)
+    )
     return [Heading(2, "Sources"), TableBlock(("No.", "Source", "For", "Standing"), rows)]
 
 

@@ -96,10 +96,11 @@ def in_report_unit(value: float, kind: QuantityKind, report: Report, digits: int
 
 
 def _in(value: float, kind: QuantityKind, unit: str, digits: int) -> str:
-    if kind.scale == "point":
-        converted = fixed(in_unit(value, unit, point=True), 2)
-    else:
-        converted = number_text(in_unit(value, unit), digits)
+    converted = (
+        fixed(in_unit(value, unit, point=True), 2)
+        if kind.scale == "point"
+        else number_text(in_unit(value, unit), digits)
+    )
     return with_unit(converted, unit_text(unit))
 
 

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterable
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 from calcbook.calcfile import Calculation
 from calcbook.chain.outcome import CaseOutcome, CheckResult, Result, Solved
@@ -12,7 +12,6 @@ from calcbook.library.cards import Material, Method, Situation
 from calcbook.record.digest import Digest
 from calcbook.record.life import Life
 from calcbook.record.software import Software
-
 
 # What a book's own card is called wherever the record stands on it.
 HOUSE_METHOD = "house method"
@@ -25,7 +24,7 @@ class Page:
     solved: Solved
     digest: Digest
     software: Software
-    life: Life = Life()
+    life: Life = field(default_factory=Life)
 
     @property
     def chain(self) -> Chain:

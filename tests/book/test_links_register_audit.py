@@ -17,7 +17,9 @@ from calcbook.interface import solve_file
 from calcbook.library.errata import Erratum, read_errata
 
 GOOD = (Path(__file__).resolve().parents[2] / "calcs/wc-101.yaml").read_text(encoding="utf-8")
-HOT = "T_hot:  {value: 74 degC,   is: mean hot temperature,   source: heat balance sheet 12, tolerance: 0.5 K}"
+HOT = (
+    "T_hot:  {value: 74 degC,   is: mean hot temperature,   source: heat balance sheet 12, tolerance: 0.5 K}"
+)
 FED = "T_hot:  {from: {calculation: S-1, result: T inside surface service}, is: surface of the source}"
 
 
@@ -74,7 +76,9 @@ def test_a_changed_source_moves_what_it_feeds(book: Path) -> None:
 )
 def test_a_link_that_leads_nowhere_is_a_fault(book: Path, link: str, code: str) -> None:
     fed = book / "fed.yaml"
-    text = fed.read_text(encoding="utf-8").replace("{calculation: S-1, result: T inside surface service}", link)
+    text = fed.read_text(encoding="utf-8").replace(
+        "{calculation: S-1, result: T inside surface service}", link
+    )
     fed.write_text(text, encoding="utf-8")
     with pytest.raises(Faults) as caught:
         solve_file(fed)
@@ -95,8 +99,11 @@ def test_the_register_lists_every_calculation_with_what_it_takes_and_feeds(book:
     assert result.exit_code == 0
     text = (book.parent / "output/register.md").read_text(encoding="utf-8")
     assert result.stdout == text
-    rows = {row[1]: row for row in ([cell.strip() for cell in line.split("|")] for line in text.splitlines())
-            if len(row) > 5}
+    rows = {
+        row[1]: row
+        for row in ([cell.strip() for cell in line.split("|")] for line in text.splitlines())
+        if len(row) > 5
+    }
     assert rows["S-1"][4:6] == ["in preparation", "preliminary"]
     assert rows["S-1"][10] == "F-1 (T_hot)"
     assert rows["F-1"][9].startswith("S-1 (T_hot; preliminary")
@@ -151,6 +158,8 @@ def test_an_audit_finds_a_missing_record_and_a_fault(book: Path) -> None:
 def test_the_errata_file_reads_and_an_erratum_names_its_card(tmp_path: Path) -> None:
     assert read_errata() == ()
     path = tmp_path / "errata.yaml"
-    path.write_text("errata:\n  - {card: gnielinski-1976, versions: [0.1.0], wrong: a constant, mended in: 0.1.1}\n",
-                    encoding="utf-8")
+    path.write_text(
+        "errata:\n  - {card: gnielinski-1976, versions: [0.1.0], wrong: a constant, mended in: 0.1.1}\n",
+        encoding="utf-8",
+    )
     assert read_errata(path) == (Erratum("gnielinski-1976", ("0.1.0",), "a constant", "0.1.1"),)

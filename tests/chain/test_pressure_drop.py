@@ -79,9 +79,7 @@ report: {{U on: outside}}
     )
 
 
-def dropped(
-    chain: Chain, condition: str = SERVICE, inputs: dict[str, np.ndarray] | None = None
-) -> Solution:
+def dropped(chain: Chain, condition: str = SERVICE, inputs: dict[str, np.ndarray] | None = None) -> Solution:
     solution = solve(chain, {**chain.case_inputs(""), **(inputs or {})}, condition)
     evaluate_pressure_drops(chain, solution)
     return solution

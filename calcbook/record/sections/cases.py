@@ -172,7 +172,15 @@ def _case_checks(case: CaseOutcome, page: Page) -> list[Block]:
     """The checks that are not within, each; the others counted."""
     within = [check for check in case.checks if check.state in ("within", "not counting")]
     rows = tuple(
-        (check.id, check.condition, check.figure, check.limit, verdict(check, page.is_house(check.card)), check.level, check.accepted)
+        (
+            check.id,
+            check.condition,
+            check.figure,
+            check.limit,
+            verdict(check, page.is_house(check.card)),
+            check.level,
+            check.accepted,
+        )
         for check in case.checks
         if check not in within
     )

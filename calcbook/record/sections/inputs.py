@@ -203,7 +203,7 @@ def _saturation_rows(page: Page) -> tuple[tuple[str, ...], ...]:
         operation, kind = row.step.operation, row.step.kind
         if kind is None or not isinstance(operation, PropertyOperation | BoilingOperation | FixedOperation):
             continue
-        if isinstance(operation, PropertyOperation) and operation.property not in SATURATION_FIGURES:
+        if isinstance(operation, PropertyOperation) and operation.property_name not in SATURATION_FIGURES:
             continue
         owner, _, place = row.step.id.removeprefix("stream ").rpartition("/")[0].partition("/")
         stream = owner if row.step.id.startswith("stream ") else streams[id(operation.source)]

@@ -94,7 +94,9 @@ def _wall_phase(page: Page) -> str:
     if not checks:
         return "No film has a fluid whose phase at the wall could be checked."
     if not failed:
-        return f"{len(checks)} checks against boiling, condensing and freezing at the wall, all within.{change}"
+        return (
+            f"{len(checks)} checks against boiling, condensing and freezing at the wall, all within.{change}"
+        )
     first = f"{failed[0].figure}, limit {failed[0].limit}"
     return f"{len(failed)} of {len(checks)} checks at the wall are not within: {first}.{change}"
 
