@@ -99,7 +99,8 @@ class FluidText:
 
     ``kind``: name, mixture, humid air, petroleum, table or constants. ``fraction`` is the figure that tells
     one mixture from another: a fraction, the humidity by its ``basis``, or the relative density.
-    ``columns`` holds the entries of a table or constants by property name; ``astm`` the two points of a D341 viscosity as (temperature, kinematic viscosity).
+    ``columns`` holds the entries of a table or constants by property name; ``astm`` the two points of a
+    D341 viscosity as (temperature, kinematic viscosity).
     """
 
     kind: str
