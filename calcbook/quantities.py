@@ -148,7 +148,7 @@ _SI_TEXTS = (
     "m", "m^2", "m^3", "kg", "s", "K", "mol", "kg/m^3", "Pa", "Pa s", "m^2/s", "m/s", "m/s^2", "kg/s",
     "m^3/s", "kg/(m^2 s)", "N", "J", "W", "W/m^2", "W/m^3", "W/(m K)", "W/(m^2 K)", "m^2 K/W", "K/W",
     "W/K", "m K/W", "J/kg", "J/(kg K)", "J/K", "1/K", "1/m", "1/s", "N/m", "W/(m^2 K^4)", "Pa/m",
-    "kg/mol", "J/mol", "J/(mol K)",
+    "kg/mol", "J/mol", "J/(mol K)", "J/(m^2 K s^0.5)",
 )  # fmt: skip
 """Unit texts that ``si_unit`` prefers over products of base units."""
 

@@ -48,6 +48,7 @@ CARDS = {
     "limit-source-unknown",
     "limit-twice",
     "limit-without-symbol",
+    "method-not-friction",
     "place-unknown",
     "quantity-unknown",
     "solve-bounds",

@@ -216,9 +216,18 @@ report: {U on: outside}
 
 
 def house_method(
-    name: str, relation: str, constants: dict[str, str], needs: str = "", closes_on: str = "surface"
+    name: str,
+    relation: str,
+    constants: dict[str, str],
+    needs: str = "",
+    closes_on: str = "surface",
+    points: tuple[tuple[str, float], ...] = (("", 1.0),),
 ) -> str:
-    """A house method that gives h."""
+    """A house method that gives h; ``points`` are the given figures of its check points with their h."""
+    checked = "\n".join(
+        f"  - {{given: {{{given}}}, gives: {{h: {value}}}, within: 1e-12, source: by hand, standing: common practice}}"
+        for given, value in points
+    )
     rows = "\n".join(f"  {symbol}: {text}" for symbol, text in constants.items())
     return f"""\
 method: {name}
@@ -238,7 +247,7 @@ family: trial
 sources:
   - {{cite: test, for: equation, standing: common practice}}
 check points:
-  - {{given: {{}}, gives: {{h: 1}}, within: 1, source: none is evaluated here, standing: common practice}}
+{checked}
 state: {{is: trial, since: 0.1}}
 """
 

@@ -120,14 +120,15 @@ def test_cubic_flux_law_on_many_samples(tmp_path):
 
 # --- a law that jumps ---------------------------------------------------------------------------------
 
-LOW = house_method("house-low", "h = h_1", {"h_1": "500 W/(m^2 K)"})
-HIGH = house_method("house-high", "h = h_1", {"h_1": "2000 W/(m^2 K)"})
+LOW = house_method("house-low", "h = h_1", {"h_1": "500 W/(m^2 K)"}, points=(("", 500), ("", 500)))
+HIGH = house_method("house-high", "h = h_1", {"h_1": "2000 W/(m^2 K)"}, points=(("", 2000), ("", 2000)))
 JUMP = house_method(
     "house-jump",
     "h = h_1 if abs(T_s - T_b) < dT_1 else h_2",
     {"h_1": "500 W/(m^2 K)", "h_2": "2000 W/(m^2 K)", "dT_1": "10 K"},
+    points=(("T_s: 300, T_b: 295", 500), ("T_s: 320, T_b: 295", 2000)),
 )
-PLAIN = house_method("house-plain", "h = h_1", {"h_1": "1000 W/(m^2 K)"})
+PLAIN = house_method("house-plain", "h = h_1", {"h_1": "1000 W/(m^2 K)"}, points=(("", 1000), ("", 1000)))
 JUMP_CARDS = {
     "house-low": LOW,
     "house-high": HIGH,
