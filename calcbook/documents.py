@@ -216,6 +216,8 @@ def _text_of(path: Path, called: str) -> str:
     place = Place(called)
     if path.is_dir():
         raise _single("file-is-folder", place, "this is a folder, not a file", expected="a YAML file")
+    if path.exists() and not path.is_file():
+        raise _single("file-unreadable", place, "this is no regular file", expected="a readable YAML file")
     try:
         with path.open("rb") as stream:
             data = stream.read(MAXIMUM_BYTES + 1)

@@ -42,6 +42,7 @@ CODES: dict[str, str] = {
     "column-unknown": "a table file has a column that is no property",
     "number-unreadable": "a number that cannot be read",
     "number-decimal-comma": "a decimal comma: write a point",
+    "number-out-of-proportion": "a figure far beyond anything that a plant has",
     "number-not-finite": "not a number, infinite, or beyond the range of numbers",
     "quantity-negative": "a quantity that cannot be negative or zero",
     "temperature-not-absolute": "a temperature at or below absolute zero",
@@ -184,4 +185,5 @@ CODES: dict[str, str] = {
     "link-revision-unknown": "a link is pinned to a revision that is not issued",
     "link-result-unknown": "a link to a result that the source does not have",
     "link-circular": "calculations take from each other in a circle",
+    "issued-altered": "an issued copy is not what was frozen",
 }

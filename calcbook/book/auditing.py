@@ -54,7 +54,21 @@ def audit(entries: Sequence[Entry], errata: Sequence[Erratum] | None = None) -> 
                         "give one another number",
                     )
                 )
-    return findings
+    return [*findings, *_orphans(entries)]
+
+
+def _orphans(entries: Sequence[Entry]) -> Iterator[AuditFinding]:
+    """Sign-offs whose calculation file is gone, under another name or not at all."""
+    for folder in sorted({entry.found.path.parent for entry in entries}):
+        for path in sorted(folder.glob("*.signoffs.yaml")):
+            if not path.with_name(path.name.replace(".signoffs.yaml", ".yaml")).is_file():
+                yield AuditFinding(
+                    "sign-offs alone",
+                    path.as_posix(),
+                    0,
+                    "the calculation file that these sign-offs stand beside is gone",
+                    "give the calculation file its name back, or move its sign-offs with it",
+                )
 
 
 def _of_entry(entry: Entry, errata: Sequence[Erratum]) -> Iterator[AuditFinding]:

@@ -52,6 +52,13 @@ SYMBOL = re.compile(r"[A-Za-z][A-Za-z0-9_]{0,39}")
 CLASHING_NAMES = frozenset(["given", "derived", "geometry", "circuit", "solution", "book"])
 CLASHING_STARTS = ("stream ", "case ", "fluid ", "assumption ", "word ", "unread ")
 AT_PLACE = "at "
+# Beyond these sizes (SI) a figure is a slip of the keyboard; working with it only breaks the arithmetic.
+SMALLEST, LARGEST = 1e-12, 1e11
+# Names in the folder of the records that no calculation may have, and names that one system keeps for devices.
+PAGES = ("register.md", "library.md", "verification.md")
+DEVICES = frozenset(
+    ("con", "prn", "aux", "nul", *(f"{port}{number}" for port in ("com", "lpt") for number in range(1, 10)))
+)
 FLUID_KINDS = ("mixture", "humid air", "petroleum", "table", "table file", "constants")
 CASE_WORDS = ("all", "base", "clean", "service")
 RESERVED = frozenset(
@@ -240,10 +247,20 @@ class _Reader:
 
     def quantity(self, node: Scalar) -> Quantity | None:
         try:
-            return read_any(node.text)
+            quantity = read_any(node.text)
         except QuantityFault as error:
             self.quantity_fault(node, error)
             return None
+        if quantity.value != 0.0 and not SMALLEST <= abs(quantity.value) <= LARGEST:
+            self.collector.add(
+                "number-out-of-proportion",
+                node.place,
+                "no plant has a figure of this size",
+                found=shown(node.text),
+                expected=f"a figure between {SMALLEST:g} and {LARGEST:g} in SI units, or zero",
+            )
+            return None
+        return quantity
 
     def quantity_fault(self, node: Scalar, error: QuantityFault) -> None:
         self.collector.add(
@@ -295,7 +312,8 @@ class _Reader:
         node = head.scalar("number")
         if node is None:
             return ""
-        if not NUMBER.fullmatch(node.text) or node.text.endswith(".") or ".." in node.text:
+        taken = node.text.casefold() in PAGES or node.text.partition(".")[0].casefold() in DEVICES
+        if taken or not NUMBER.fullmatch(node.text) or node.text.endswith(".") or ".." in node.text:
             self.collector.add(
                 "number-not-allowed",
                 node.place,

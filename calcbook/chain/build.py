@@ -101,8 +101,8 @@ class _Builder:
             "temperature change",
             parse_expression("dT <= abs(T_in - T_out)/2"),
             "caution",
-            "one mean temperature stands for the stream only while its change is small beside the difference"
-            " of the streams",
+            "beyond it the stated means must come from the arrangement of the flows (logarithmic mean), and one state"
+            " hardly stands for the stream",
             "common practice",
             "common practice",
             self.calculation.place,

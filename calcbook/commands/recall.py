@@ -72,6 +72,9 @@ def command(
     except Faults as faults:
         click.echo(str(faults), err=True)
         sys.exit(FAULT)
+    if card and not _is_card(card, paths):
+        click.echo(f"there is no card `{card}` in the library or beside the calculations", err=True)
+        sys.exit(FAULT)
     if form == "json":
         click.echo(json.dumps(recall_data(found), indent=1, ensure_ascii=False, allow_nan=False))
     else:
@@ -80,3 +83,17 @@ def command(
         click.echo(text, err=True)
     if found.failed:
         sys.exit(FAULT)
+
+
+def _is_card(card: str, paths: tuple[Path, ...]) -> bool:
+    """Whether the library or a book that is looked through has a card of this id."""
+    from calcbook.interface import HOUSE_CARDS
+    from calcbook.library import Library
+
+    folders = {path if path.is_dir() else path.parent for path in paths}
+    libraries = [Library(folder / HOUSE_CARDS) for folder in sorted(folders)]
+    return any(
+        card in library.names(kind)
+        for library in libraries
+        for kind in ("methods", "materials", "situations")
+    )

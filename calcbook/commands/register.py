@@ -50,7 +50,13 @@ def command(folder: Path, output: Path | None, form: str) -> None:
         click.echo(json.dumps(register_data(entries), indent=1, ensure_ascii=False))
     else:
         text = markdown(register_blocks(name, entries))
-        write_whole(files[0].output / "register.md", text)
         click.echo(text, nl=False)
+        try:
+            write_whole(files[0].output / "register.md", text)
+        except OSError as error:
+            click.echo(
+                f"{files[0].output.as_posix()}: output-not-writable: {error.strerror or error}", err=True
+            )
+            sys.exit(2)
     if any(entry.faults for entry in entries):
         sys.exit(2)

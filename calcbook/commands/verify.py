@@ -7,7 +7,7 @@ from pathlib import Path
 
 import click
 
-FINDINGS = 1
+FINDINGS, FAULT = 1, 2
 
 
 @click.command("verify", short_help="Run every check point on this installation.")
@@ -50,7 +50,11 @@ def command(output: Path, cards: Path | None) -> None:
     else:
         found = verify(library, lambda name: None)
     blocks = verification_blocks(software_line(), found.points, found.uncovered, found.trial, found.faults)
-    write_whole(output / "verification.md", markdown(blocks))
+    try:
+        write_whole(output / "verification.md", markdown(blocks))
+    except OSError as error:
+        click.echo(f"{output.as_posix()}: output-not-writable: {error.strerror or error}", err=True)
+        sys.exit(FAULT)
     missed = sum(not point.holds for point in found.points)
     click.echo(
         f"check points {len(found.points)}, not met {missed}, faults of cards {len(found.faults)},"

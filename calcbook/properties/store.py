@@ -92,8 +92,11 @@ def _read(path: Path, key: str) -> dict[str, Any] | None:
         return None
     if header != f"{FORMAT} {hashlib.sha256(text).hexdigest()}".encode():
         return None
-    kept: dict[str, Any] = json.loads(text)
-    return kept if kept["key"] == key else None
+    kept = json.loads(text)
+    parts = ("facts", "series", "direct")
+    if not isinstance(kept, dict) or kept.get("key") != key:
+        return None
+    return kept if all(isinstance(kept.get(part), dict) for part in parts) else None
 
 
 def _replace(path: Path, content: bytes) -> None:

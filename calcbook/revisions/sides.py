@@ -27,6 +27,7 @@ from calcbook.revisions.seals import (
     ISSUED,
     RESULTS,
     SEAL_NAME,
+    check_seal,
     issued_copies,
     issued_folder,
     read_seal,
@@ -94,6 +95,13 @@ def load_issued(number: str, revision: str, output: Path) -> Side:
     """The issued copy of a revision. Raises ``Faults``: issued-not-found, and those of ``load_side``."""
     folder = issued_folder(output, number) / revision
     called = f"{number}@{revision}"
+    altered = check_seal(folder) if (folder / CALCULATION).is_file() else ()
+    if altered:
+        words = "; ".join(f"{finding.file}: {finding.text}" for finding in altered)
+        message = f"revision {revision} of {number} is not what was issued"
+        raise Faults(
+            [Fault("issued-altered", Place(called), message, shown(words, 200), "the copy as it was issued")]
+        )
     if not (folder / CALCULATION).is_file():
         names = [copy.revision for copy in issued_copies(output, number)]
         raise Faults(

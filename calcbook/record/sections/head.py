@@ -176,6 +176,8 @@ def _governing(page: Page) -> list[Block]:
     if not page.has_cases:
         return []
     governing = page.solved.governing
+    if not governing:
+        return []
     case = next(case for case in page.solved.cases if case_name(case.name) == governing)
     criterion = page.calculation.acceptance[0] if page.calculation.acceptance else None
     rule = f"smallest margin of {criterion.text}" if criterion is not None else "lowest U in service"
