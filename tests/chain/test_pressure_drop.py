@@ -401,7 +401,9 @@ def test_the_kerosene_crude_exchanger_of_kern(tmp_path: Path) -> None:
 # --- it never disturbs U ----------------------------------------------------------------------------
 
 
-@pytest.mark.parametrize("name", sorted(path.stem for path in CALCS.glob("*.yaml") if path.stem != "book"))
+@pytest.mark.parametrize(
+    "name", sorted(path.stem for path in CALCS.glob("*.yaml") if path.stem != "book" and "." not in path.stem)
+)
 def test_u_is_the_same_bit_for_bit_without_it(name: str, monkeypatch: pytest.MonkeyPatch) -> None:
     calculation = read(CALCS / f"{name}.yaml")
     asked = tuple(item for item in calculation.acceptance if not item.result.startswith("dp "))

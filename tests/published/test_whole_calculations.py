@@ -239,7 +239,7 @@ def test_buried_pipe_model_of_a_library(tmp_path):
     body = """\
 geometry: {shape: tube, inside diameter: {value: 60.3 mm, source: test}}
 resistances:
-  - {name: water film, kind: film, coefficient: {value: 1e12 W/(m^2 K), source: test}}
+  - {name: water film, kind: film, coefficient: {value: 1e11 W/(m^2 K), source: test}}
   - {name: insulation, kind: wall, thickness: {value: 13 mm, source: test},
      conductivity: {value: 0.04 W/(m K), source: test}}
   - {name: outer film, kind: film, coefficient: {value: 5 W/(m^2 K), source: test}}
@@ -249,4 +249,4 @@ report: {U on: outside}
     assert 1 / conductance == pytest.approx(2.164, abs=0.0005)
     assert conductance == pytest.approx(0.462, abs=0.0005)
     written_out = np.log(86.3 / 60.3) / (2 * np.pi * 0.04) + 1 / (5 * np.pi * 0.0863)
-    assert 1 / conductance == pytest.approx(written_out, rel=1e-9)  # 1e-9: the film of 1e12
+    assert 1 / conductance == pytest.approx(written_out, rel=1e-9)  # 1e-9: the film of 1e11

@@ -7,14 +7,13 @@ from pathlib import Path
 
 import pytest
 from click.testing import CliRunner
-from two_sides import STATED, example, with_value
+from two_sides import STATED, example, seal, with_value
 
 from calcbook.commands import main
 from calcbook.faults import Faults
 from calcbook.interface import solve_file
 from calcbook.record import markdown
 from calcbook.revisions.recall import Recall, Wanted, recall, recall_blocks, recall_data
-from calcbook.revisions.seals import Issued, seal_text
 
 
 @pytest.fixture
@@ -31,8 +30,7 @@ def book(tmp_path: Path) -> Path:
         (folder / "calculation.yaml").write_text(
             text.replace("revision: A", f"revision: {revision}"), encoding="utf-8"
         )
-        seal = Issued(folder, "CV-1", revision, "final", "2026-09-02", supersedes, "", {}, {}, {})
-        (folder / "seal.json").write_text(seal_text(seal), encoding="utf-8")
+        seal(folder, "CV-1", revision, supersedes)
     return tmp_path
 
 

@@ -8,7 +8,7 @@ from pathlib import Path
 
 import pytest
 from click.testing import CliRunner
-from two_sides import EXAMPLES, STATED, with_value
+from two_sides import EXAMPLES, STATED, seal, with_value
 
 from calcbook.commands import main
 from calcbook.faults import Faults
@@ -17,7 +17,6 @@ from calcbook.record import digest_of, markdown, results_text, software_of
 from calcbook.revisions.comparison import compare
 from calcbook.revisions.git import commit_of
 from calcbook.revisions.pairs import compare_texts
-from calcbook.revisions.seals import Issued, seal_text
 from calcbook.revisions.sides import load_side
 from calcbook.revisions.since import compare_since, since_blocks, since_data
 
@@ -80,8 +79,7 @@ def issue(
         results["results"][name]["value"] = value
     results["software"]["calcbook"] = "0.0.9"
     (folder / "results.json").write_text(json.dumps(results), encoding="utf-8")
-    seal = Issued(folder, NUMBER, revision, "final", "2026-09-02", supersedes, "", {}, {}, {})
-    (folder / "seal.json").write_text(seal_text(seal), encoding="utf-8")
+    seal(folder, NUMBER, revision, supersedes)
 
 
 # --- git ------------------------------------------------------------------------------------------------

@@ -7,6 +7,7 @@ import re
 import tempfile
 from pathlib import Path
 
+from calcbook.revisions.seals import Issued, seal_text, sha256_of
 from calcbook.revisions.sides import Side, load_side
 
 EXAMPLES = Path(__file__).resolve().parents[2] / "calcs"
@@ -51,6 +52,13 @@ def _kept(text: str, beside: tuple[tuple[str, str], ...]) -> Side:
 def side_of(text: str, beside: dict[str, str] | None = None) -> Side:
     """A side from the text of its file, with other files in its folder; each text is solved once."""
     return _kept(text, tuple((beside or {}).items()))
+
+
+def seal(folder: Path, number: str, revision: str, supersedes: str = "") -> None:
+    """Seal the files of a folder as an issued copy, final."""
+    files = {path.name: sha256_of(path.read_bytes()) for path in folder.iterdir()}
+    issued = Issued(folder, number, revision, "final", "2026-09-02", supersedes, "", {}, {}, files)
+    (folder / "seal.json").write_text(seal_text(issued), encoding="utf-8")
 
 
 def example(name: str) -> str:
