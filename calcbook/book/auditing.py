@@ -132,7 +132,16 @@ def _stored(entry: Entry) -> Iterator[AuditFinding]:
 
 def _signoffs(entry: Entry) -> Iterator[AuditFinding]:
     assert entry.lifecycle is not None
-    file = signoffs_path(entry.found.path).as_posix()
+    path = signoffs_path(entry.found.path)
+    file = path.as_posix()
+    if entry.lifecycle.issued and not path.is_file():
+        yield AuditFinding(
+            "sign-offs missing",
+            file,
+            0,
+            f"revision {entry.lifecycle.issued[-1].revision} was issued, and its sign-offs no longer stand beside the file",
+            "restore them from the commit of the issue",
+        )
     for item in entry.lifecycle.signoffs:
         if item.validity == "void":
             yield AuditFinding(

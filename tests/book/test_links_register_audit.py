@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import shutil
 from pathlib import Path
 
 import pytest
@@ -16,6 +17,7 @@ from calcbook.faults import Collector, Faults
 from calcbook.interface import solve_file
 from calcbook.library.errata import Erratum, read_errata
 
+ROOT = Path(__file__).resolve().parents[2]
 GOOD = (Path(__file__).resolve().parents[2] / "calcs/wc-101.yaml").read_text(encoding="utf-8")
 HOT = (
     "T_hot:  {value: 74 degC,   is: mean hot temperature,   source: heat balance sheet 12, tolerance: 0.5 K}"
@@ -153,6 +155,14 @@ def test_an_audit_finds_a_missing_record_and_a_fault(book: Path) -> None:
     result = invoke("audit", str(book), "--format", "markdown")
     assert result.exit_code == 1
     assert "record missing" in result.stdout and "fault key-missing" in result.stdout
+
+
+def test_an_audit_misses_the_sign_offs_of_an_issued_calculation(tmp_path: Path) -> None:
+    for folder in ("calcs", "output"):
+        shutil.copytree(ROOT / folder, tmp_path / folder)
+    assert not kinds(tmp_path / "calcs")
+    (tmp_path / "calcs/wc-101.signoffs.yaml").unlink()
+    assert "sign-offs missing" in kinds(tmp_path / "calcs")
 
 
 def test_the_errata_file_reads_and_an_erratum_names_its_card(tmp_path: Path) -> None:
