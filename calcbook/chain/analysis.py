@@ -4,11 +4,12 @@ from __future__ import annotations
 
 import itertools
 import math
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import replace
 
 import numpy as np
 
+from calcbook.calcfile.calculation import Criterion
 from calcbook.chain.checks import apply_acceptances, evaluate_check
 from calcbook.chain.circuit import branch_coefficient
 from calcbook.chain.films import SATURATED_SIDES
@@ -45,7 +46,7 @@ from calcbook.chain.pressure import (
     pressure_notes,
 )
 from calcbook.chain.sensitivity import derivatives
-from calcbook.chain.solve import Solution, solve
+from calcbook.chain.solve import Solution, chosen, solve
 from calcbook.chain.types import (
     CLEAN,
     CONDITIONS,
@@ -96,7 +97,7 @@ class _Analysis:
     def __init__(self, chain: Chain, collector: Collector):
         self.chain = chain
         self.collector = collector
-        self.dimensions = _dimensions(chain)
+        self.dimensions = dict(chain.dimensions)
         self.used_cards: dict[str, str] = dict(chain.cards)
 
     def solved(self) -> Solved | None:
@@ -299,7 +300,7 @@ class _Analysis:
                 )
         return results
 
-    def _stream_results(self, solution: Solution, put) -> None:  # type: ignore[no-untyped-def]
+    def _stream_results(self, solution: Solution, put: Callable[[str, float, str, str], None]) -> None:
         for group in (self.chain.inner, self.chain.outer):
             for branch in group.branches:
                 state = self.chain.streams.get(branch.stream)
@@ -485,7 +486,7 @@ class _Analysis:
                                 rows.append(row)
         return tuple(rows)
 
-    def _saturated_rows(self, state, solutions: Mapping[str, Solution]) -> list[PropertyRow]:  # type: ignore[no-untyped-def]
+    def _saturated_rows(self, state: StreamState, solutions: Mapping[str, Solution]) -> list[PropertyRow]:
         """Properties on the saturation line of a stream that changes phase."""
         rows = []
         for group in (self.chain.inner, self.chain.outer):
@@ -610,7 +611,7 @@ class _Analysis:
             )
         return tuple(found)
 
-    def _limit_of(self, criterion, result: Result, solution: Solution) -> float | None:  # type: ignore[no-untyped-def]
+    def _limit_of(self, criterion: Criterion, result: Result, solution: Solution) -> float | None:
         value = criterion.limit
         if value.symbol:
             name = next(
@@ -642,6 +643,7 @@ class _Analysis:
                 )
                 return None
             return solution.number(name)
+        assert value.quantity is not None, "a limit is a symbol or a quantity"
         try:
             return as_kind(value.quantity, result.kind).value
         except QuantityFault as error:
@@ -702,13 +704,23 @@ class _Analysis:
     ) -> CrossRow:
         reference = base.results["U_service"].value
         same = other.method.family == used.method.family
-        if not self.chain.has_temperatures and needs_temperatures(self.chain, branch, other):
+
+        def row(coefficient: float, overall: float, difference: float, left_out: str) -> CrossRow:
+            method = other.method
             return CrossRow(
                 branch.name,
-                other.method.id,
-                other.method.title,
-                other.method.family,
+                method.id,
+                method.title,
+                method.family,
                 same,
+                coefficient,
+                overall,
+                difference,
+                left_out,
+            )
+
+        if not self.chain.has_temperatures and needs_temperatures(self.chain, branch, other):
+            return row(
                 math.nan,
                 math.nan,
                 math.nan,
@@ -716,34 +728,14 @@ class _Analysis:
             )
         reason = self._out_of_range(other, self._at_solution(other, base.solutions[SERVICE]))
         if reason:
-            return CrossRow(
-                branch.name,
-                other.method.id,
-                other.method.title,
-                other.method.family,
-                same,
-                math.nan,
-                math.nan,
-                math.nan,
-                reason,
-            )
+            return row(math.nan, math.nan, math.nan, reason)
         solution = solve(self.chain, inputs, SERVICE, {branch.name: other})
         reason = (
             self._out_of_range(other, solution) if bool(np.all(solution.converged)) else "does not close here"
         )
         overall = solution.number(self.chain.results["U"])
         coefficient = solution.number(other.coefficient) if other.coefficient in solution.values else math.nan
-        return CrossRow(
-            branch.name,
-            other.method.id,
-            other.method.title,
-            other.method.family,
-            same,
-            coefficient,
-            overall,
-            overall / reference - 1.0,
-            reason,
-        )
+        return row(coefficient, overall, overall / reference - 1.0, reason)
 
     def _at_solution(self, other: Candidate, solution: Solution) -> Solution:
         """A method's own figures at the surface that the used method gives: enough to see most ranges."""
@@ -837,21 +829,10 @@ class _Analysis:
 # --- small helpers ----------------------------------------------------------------------------------
 
 
-def chosen(branch: Branch, solution: Solution) -> Candidate:
-    """The candidate that a film used in a single record."""
-    place = solution.chosen.get(branch.name)
-    return branch.candidates[int(np.asarray(place).ravel()[0]) if place is not None else 0]
-
-
 def needs_temperatures(chain: Chain, branch: Branch, candidate: Candidate) -> bool:
     """Whether a candidate put in place of a film's own follows the temperature of the surface."""
     group = next(group for group in (chain.inner, chain.outer) if branch in group.branches)
     return follows_temperature(group, {branch.name: candidate})
-
-
-def _dimensions(chain: Chain) -> dict[str, tuple]:
-    """The dimension of every figure of a chain by id."""
-    return dict(chain.dimensions)
 
 
 def _names(element: Group | Layer) -> set[str]:

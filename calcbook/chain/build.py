@@ -7,11 +7,12 @@ from dataclasses import replace
 from calcbook.calcfile import Calculation
 from calcbook.calcfile.calculation import Derived, Term, Value
 from calcbook.calcfile.links import CURRENT
+from calcbook.chain.circuit import Circuit
 from calcbook.chain.films import FilmScope
 from calcbook.chain.fins import FinnedSide, check_finned_situation, lay_out_fins, lay_out_fins_layer
 from calcbook.chain.petroleum import lay_out_cards
 from calcbook.chain.pressure import asked_symbols, lay_out_pressure_drop
-from calcbook.chain.scope import Scope
+from calcbook.chain.scope import Scope, unnamed_kind
 from calcbook.chain.services import check_services
 from calcbook.chain.streams import lay_out_stream
 from calcbook.chain.surfaces import Shape, Wall, lay_out_shape
@@ -32,10 +33,9 @@ from calcbook.chain.types import (
 from calcbook.faults import Collector, Faults, Place, nearest_names, shown
 from calcbook.formulas import Relation, RelationFault, dimension, parse_expression
 from calcbook.library import Library, vocabulary
-from calcbook.library.cards import Limit, Method, State
+from calcbook.library.cards import Limit, Method, Situation, State
 from calcbook.library.conductivity import ConductivityTable
-from calcbook.library.operations import RelationOperation
-from calcbook.quantities import DIMENSIONLESS, QuantityFault, QuantityKind, as_kind
+from calcbook.quantities import DIMENSIONLESS, QuantityKind, as_kind
 
 WALL_CARDS = {"tube": "wall-cylinder", "plane": "wall-plane", "sphere": "wall-sphere"}
 
@@ -89,7 +89,7 @@ class _Builder:
         if self.collector or basis is None or elements is None:
             self._mark_unused()
             return None
-        circuit, results = lay_out_circuit(scope, elements, shape, basis, self.streams)
+        circuit, results = Circuit(scope, elements, shape, basis, self.streams).lay_out()
         self.checks += self._heat_balance(elements, results)
         return self._finished(elements, shape, basis, circuit, results)
 
@@ -826,7 +826,7 @@ class _Builder:
         part = terms[: walls[0]] if side == "inside" else terms[walls[-1] :]
         return [term for term in part if term.deposit is not None and term.deposit.narrows]
 
-    def _check_with(self, term: Term, situation, film: FilmScope) -> None:  # type: ignore[no-untyped-def]
+    def _check_with(self, term: Term, situation: Situation, film: FilmScope) -> None:
         """Every entry of `with:` must be asked for by the situation or one of its methods."""
         if not term.with_values:
             return
@@ -1102,18 +1102,4 @@ def _kind_of_dimension(dim: tuple, reading: str) -> QuantityKind:
     for kind in vocabulary().values():
         if kind.dimension == dim and kind.reading in ("", reading) and not kind.flag:
             return kind
-    from calcbook.chain.scope import _unnamed
-
-    return _unnamed("x", dim)
-
-
-def lay_out_circuit(
-    scope: Scope, elements: tuple[Element, ...], shape: Shape, basis: int, streams: dict[str, StreamState]
-) -> tuple[tuple[ChainStep, ...], dict[str, str]]:
-    """The steps from film coefficients and resistances to U on every surface, and the names of results."""
-    from calcbook.chain.circuit import Circuit
-
-    return Circuit(scope, elements, shape, basis, streams).lay_out()
-
-
-__all__ = ["QuantityFault", "RelationOperation", "build", "follows_temperature"]
+    return unnamed_kind("x", dim)

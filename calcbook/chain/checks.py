@@ -17,6 +17,7 @@ from calcbook.formulas import (
     Compare,
     Node,
     Number,
+    Relation,
     Symbol,
     dimension,
     evaluate,
@@ -84,7 +85,7 @@ def _in_words(check: ChainCheck, figure: str, limit: str, value: float) -> tuple
     return f"{write(tree.first)} = {words[int(value)]}", f"{OPERATORS[operator]} {write(wanted)}"
 
 
-def _counts(relation, inputs: Mapping[str, str], values: Mapping[str, np.ndarray]) -> bool:  # type: ignore[no-untyped-def]
+def _counts(relation: Relation, inputs: Mapping[str, str], values: Mapping[str, np.ndarray]) -> bool:
     return bool(evaluate(relation, {symbol: values[bound] for symbol, bound in inputs.items()}))
 
 

@@ -15,7 +15,7 @@ from calcbook.library import Library, Program
 from calcbook.library.cards import Limit, Method, Need, Situation
 from calcbook.library.programs import ProgramStep
 from calcbook.library.reading import choice_number, vocabulary
-from calcbook.quantities import DIMENSIONLESS, unit_display
+from calcbook.quantities import DIMENSIONLESS, QuantityKind, unit_display
 
 PROPERTY_SYMBOLS = {
     "rho": "density",
@@ -842,7 +842,7 @@ class FilmScope:
         return tuple(found), unusable
 
 
-def _kind_of_symbol(symbol: str):  # type: ignore[no-untyped-def]
+def _kind_of_symbol(symbol: str) -> QuantityKind | None:
     for kind in vocabulary().values():
         if kind.symbol == symbol and symbol in NAMED_GROUPS and kind.dimension == DIMENSIONLESS:
             return kind

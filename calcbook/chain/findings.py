@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from typing import Any
 
 import numpy as np
@@ -11,12 +11,13 @@ import numpy as np
 from calcbook.chain.checks import apart
 from calcbook.chain.outcome import CheckResult
 from calcbook.chain.roots import other_heat_flows
-from calcbook.chain.solve import Solution
+from calcbook.chain.solve import Solution, chosen
 from calcbook.chain.types import (
     CONDITIONS,
     SERVICE,
     Branch,
     Chain,
+    ChainStep,
     Group,
     OpenItem,
     RunnerAssumption,
@@ -105,9 +106,9 @@ def _glide_items(chain: Chain, state: StreamState, temperature: float, case: str
 
 
 def _report_no_saturation(
-    state: StreamState, values: Mapping[str, object], collector: Collector, case: str
+    state: StreamState, values: Mapping[str, Any], collector: Collector, case: str
 ) -> None:
-    pressure = float(values[state.pressure])  # type: ignore[arg-type]
+    pressure = float(values[state.pressure])
     where = f"case {case}: " if case else ""
     collector.add(
         "saturation-unknown",
@@ -118,14 +119,14 @@ def _report_no_saturation(
     )
 
 
-def _check_directions(chain: Chain, values: Mapping[str, object], collector: Collector, case: str) -> None:
+def _check_directions(chain: Chain, values: Mapping[str, Any], collector: Collector, case: str) -> None:
     """A film that condenses has the colder side opposite, a film that boils the hotter one."""
     for here, opposite in ((chain.inner, chain.outer), (chain.outer, chain.inner)):
         for branch in here.branches:
             change = branch.situation.changes_phase if branch.situation is not None else ""
             if not change or branch.reference not in values or opposite.bulk not in values:
                 continue
-            own, other = float(values[branch.reference]), float(values[opposite.bulk])  # type: ignore[arg-type]
+            own, other = float(values[branch.reference]), float(values[opposite.bulk])
             if (
                 math.isnan(own)
                 or math.isnan(other)
@@ -142,7 +143,7 @@ def _check_directions(chain: Chain, values: Mapping[str, object], collector: Col
             )
 
 
-def _all_steps(chain: Chain):  # type: ignore[no-untyped-def]
+def _all_steps(chain: Chain) -> Iterator[ChainStep]:
     yield from chain.steps
     for element in chain.elements:
         if isinstance(element, Group):
@@ -151,11 +152,9 @@ def _all_steps(chain: Chain):  # type: ignore[no-untyped-def]
                     yield from candidate.steps
 
 
-def _fluid_at(
-    state: StreamState, values: Mapping[str, object], collector: Collector
-) -> FluidAtPressure | None:
-    pressure = float(values[state.pressure]) if state.pressure else None  # type: ignore[arg-type]
-    fraction = float(values[state.fraction]) if state.fraction else None  # type: ignore[arg-type]
+def _fluid_at(state: StreamState, values: Mapping[str, Any], collector: Collector) -> FluidAtPressure | None:
+    pressure = float(values[state.pressure]) if state.pressure else None
+    fraction = float(values[state.fraction]) if state.fraction else None
     try:
         return state.fluid.state(pressure, fraction, state.phase)
     except PropertyFault as error:
@@ -169,7 +168,7 @@ def _fluid_at(
         return None
 
 
-def _check_surfaces(chain: Chain, values: Mapping[str, object], collector: Collector) -> None:
+def _check_surfaces(chain: Chain, values: Mapping[str, Any], collector: Collector) -> None:
     place = (
         chain.calculation.geometry.place
         if chain.calculation.geometry is not None
@@ -178,7 +177,7 @@ def _check_surfaces(chain: Chain, values: Mapping[str, object], collector: Colle
     for before, after in zip(chain.surfaces, chain.surfaces[1:], strict=False):
         if not after.diameter:
             continue
-        inner, outer = float(values[before.diameter]), float(values[after.diameter])  # type: ignore[arg-type]
+        inner, outer = float(values[before.diameter]), float(values[after.diameter])
         if not outer > inner:
             collector.add(
                 "wall-inverted",
@@ -287,8 +286,6 @@ def _film_checks(
 
 def assumptions_of(chain: Chain, solutions: Mapping[str, Solution]) -> tuple[RunnerAssumption, ...]:
     """The runner's decisions: those of the build, and those that only a solution shows."""
-    from calcbook.chain.analysis import chosen
-
     found: dict[str, RunnerAssumption] = {item.id: item for item in chain.assumptions}
 
     def say(name: str, text: str, decided_by: str, acts_on: str) -> None:
@@ -416,8 +413,6 @@ def root_items(
 
 def jump_items(chain: Chain, case: str, solutions: Mapping[str, Solution]) -> tuple[OpenItem, ...]:
     """Open items for laws without a root at a joint, and for a direction that is undetermined."""
-    from calcbook.chain.analysis import chosen
-
     items = []
     for condition in reversed(CONDITIONS):
         solution = solutions[condition]

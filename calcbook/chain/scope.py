@@ -99,7 +99,7 @@ class Scope:
                     expected=error.expected or "quantities whose units fit",
                 )
         if kind is None or kind.dimension != found:
-            kind = _unnamed(symbol, found)
+            kind = unnamed_kind(symbol, found)
         self.dimensions[name] = found
         self.steps[name] = ChainStep(name, symbol, title, kind, owner, operation, dict(inputs), basis)
         return name
@@ -281,6 +281,6 @@ class Scope:
             )
 
 
-def _unnamed(symbol: str, dim: Dimension) -> QuantityKind:
+def unnamed_kind(symbol: str, dim: Dimension) -> QuantityKind:
     """A kind for a figure that the vocabulary does not name: its SI unit from the dimension."""
     return QuantityKind(symbol, symbol, si_unit(dim), dim, 5, "", "", "", False, "any")

@@ -59,6 +59,12 @@ class Solution:
         return float(np.asarray(self.values[name]).ravel()[0])
 
 
+def chosen(branch: Branch, solution: Solution) -> Candidate:
+    """The candidate that a film used in a single record."""
+    place = solution.chosen.get(branch.name)
+    return branch.candidates[int(np.asarray(place).ravel()[0]) if place is not None else 0]
+
+
 def solve(
     chain: Chain,
     inputs: Mapping[str, Array],

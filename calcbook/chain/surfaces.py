@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from calcbook.calcfile.calculation import Geometry, Term
 from calcbook.chain.scope import Scope
 from calcbook.chain.types import ChainCheck, Surface
-from calcbook.faults import nearest_names, shown
+from calcbook.faults import Place, nearest_names, shown
 from calcbook.formulas import parse_expression
 from calcbook.library import vocabulary
 from calcbook.library.cards import Limit
@@ -61,7 +61,7 @@ class Shape:
             else ("o" if surface == self.outermost else str(surface))
         )
 
-    def surface_named(self, scope: Scope, name: str, place) -> int | None:  # type: ignore[no-untyped-def]
+    def surface_named(self, scope: Scope, name: str, place: Place) -> int | None:
         """The index of a surface as the file names it; None after a fault."""
         names = self.names()
         if name in names:

@@ -3,9 +3,15 @@
 from __future__ import annotations
 
 import sys
+from collections.abc import Iterable
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 import click
+
+if TYPE_CHECKING:
+    from calcbook.library import Library
+    from calcbook.record.blocks import Block
 
 USAGE = 2
 
@@ -15,13 +21,13 @@ def command() -> None:
     """List the library, or show one card as a page with its limits, accuracy, sources and check points."""
 
 
-def _library(cards: Path | None):  # type: ignore[no-untyped-def]
+def _library(cards: Path | None) -> Library:
     from calcbook.library import Library
 
     return Library(cards)
 
 
-def _print(blocks) -> None:  # type: ignore[no-untyped-def]
+def _print(blocks: Iterable[Block]) -> None:
     from calcbook.record.markdown import markdown
 
     click.echo(markdown(blocks), nl=False)
