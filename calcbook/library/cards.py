@@ -91,17 +91,6 @@ class Assignment:
 
 
 @dataclass(frozen=True, slots=True)
-class Solve:
-    """One line of ``relations``: the root of an equation between two bounds."""
-
-    symbol: str
-    between: tuple[float, float]
-    start: float
-    equation: Relation
-    where: Place
-
-
-@dataclass(frozen=True, slots=True)
 class Sum:
     """One line of ``relations``: a sum over 0, 1, … terms − 1."""
 
@@ -110,6 +99,21 @@ class Sum:
     terms: int
     of: Relation
     where: Place
+
+
+@dataclass(frozen=True, slots=True)
+class Solve:
+    """One line of ``relations``: the root of an equation between two bounds.
+
+    ``sum`` is the sum that the equation names, taken anew for every value of the root; None where it names none.
+    """
+
+    symbol: str
+    between: tuple[float, float]
+    start: float
+    equation: Relation
+    where: Place
+    sum: Sum | None = None
 
 
 Line = Assignment | Solve | Sum

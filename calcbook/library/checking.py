@@ -233,9 +233,16 @@ def _line_mutants(line: Line) -> Iterator[tuple[str, Line]]:
     elif isinstance(line, Solve):
         for figure, tree in _tree_mutants(line.equation.tree):
             yield figure, replace(line, equation=_with_tree(line.equation, tree))
-    elif isinstance(line, Sum):
-        for figure, tree in _tree_mutants(line.of.tree):
-            yield figure, replace(line, of=_with_tree(line.of, tree))
+        if line.sum is not None:
+            for figure, inner in _sum_mutants(line.sum):
+                yield figure, replace(line, sum=inner)
+    else:
+        yield from _sum_mutants(line)
+
+
+def _sum_mutants(line: Sum) -> Iterator[tuple[str, Sum]]:
+    for figure, tree in _tree_mutants(line.of.tree):
+        yield figure, replace(line, of=_with_tree(line.of, tree))
 
 
 def _with_tree(relation: Relation, tree: Node) -> Relation:

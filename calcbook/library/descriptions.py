@@ -98,16 +98,6 @@ USE = Description(
         Key("counts when", "condition under which its limits count", "relation"),
     ),
 )
-SOLVE = Description(
-    "a solved line",
-    "the root of an equation",
-    (
-        Key("for", "symbol of the root", "name", required=True),
-        Key("between", "lower and upper bound", "list", required=True),
-        Key("start", "first value", "number", required=True),
-        Key("equation", "left == right", "relation", required=True),
-    ),
-)
 SUM = Description(
     "a summed line",
     "a sum over 0, 1, 2 …",
@@ -116,6 +106,17 @@ SUM = Description(
         Key("over", "index symbol", "name", required=True),
         Key("terms", "number of terms", "number", required=True),
         Key("of", "the term as a relation", "relation", required=True),
+    ),
+)
+SOLVE = Description(
+    "a solved line",
+    "the root of an equation",
+    (
+        Key("for", "symbol of the root", "name", required=True),
+        Key("between", "lower and upper bound", "list", required=True),
+        Key("start", "first value", "number", required=True),
+        Key("sum", "a sum that the equation names, over values of the root", "mapping"),
+        Key("equation", "left == right", "relation", required=True),
     ),
 )
 METHOD = Description(

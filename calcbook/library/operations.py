@@ -148,65 +148,6 @@ class LookupOperation:
 
 
 @dataclass(frozen=True, slots=True)
-class SolveOperation:
-    """The root of an equation between two bounds, by Newton's method kept inside a shrinking bracket."""
-
-    line: Solve
-
-    @property
-    def symbols(self) -> tuple[str, ...]:
-        return tuple(symbol for symbol in self.line.equation.symbols if symbol != self.line.symbol)
-
-    @property
-    def residual(self) -> Node:
-        """Left side less right side; kept with the equation, so that it is compiled once."""
-        equation = self.line.equation.tree
-        assert isinstance(equation, Compare)
-        found = equation.memory.get(SolveOperation)
-        if found is None:
-            found = equation.memory[SolveOperation] = Binary("-", equation.first, equation.rest[0][1])
-        return found
-
-    def value(self, arguments: Mapping[str, Array]) -> Array:
-        shape = np.broadcast_shapes(*(np.shape(arguments[symbol]) for symbol in self.symbols))
-        known = {name: np.broadcast_to(arguments[name], shape).ravel() for name in self.symbols}
-        size = int(np.prod(shape, dtype=int))
-        return self._root(known, size).reshape(shape)
-
-    def _root(self, known: dict[str, Array], size: int) -> Array:
-        symbol, residual = self.line.symbol, self.residual
-        slope = partial(residual, symbol)
-        low, high = (np.full(size, bound) for bound in self.line.between)
-        at_low = evaluate(residual, known | {symbol: low})
-        at_high = evaluate(residual, known | {symbol: high})
-        root = np.full(size, self.line.start)
-        root[~(at_low * at_high <= 0.0)] = np.nan
-        active = np.isfinite(root)
-        for _ in range(_ROOT_PASSES):
-            if not active.any():
-                break
-            here = {name: figures[active] for name, figures in known.items()} | {symbol: root[active]}
-            off = evaluate(residual, here)
-            below = np.sign(off) == np.sign(at_low[active])
-            low[active] = np.where(below, root[active], low[active])
-            high[active] = np.where(below, high[active], root[active])
-            with np.errstate(divide="ignore", invalid="ignore"):
-                step = root[active] - off / evaluate(slope, here)
-            outside = ~((step > low[active]) & (step < high[active]))
-            step = np.where(outside, 0.5 * (low[active] + high[active]), step)
-            step = np.where(off == 0.0, root[active], step)
-            done = np.abs(step - root[active]) <= 4.0e-16 * np.abs(step)
-            root[active] = step
-            active[np.flatnonzero(active)[done]] = False
-        return root
-
-    def slopes(self, arguments: Mapping[str, Array], value: Array, wanted: Iterable[str]) -> dict[str, Array]:
-        known = {name: arguments[name] for name in self.symbols} | {self.line.symbol: value}
-        along = evaluate(partial(self.residual, self.line.symbol), known)
-        return {name: -evaluate(partial(self.residual, name), known) / along for name in wanted}
-
-
-@dataclass(frozen=True, slots=True)
 class SumOperation:
     """A sum over 0, 1, … terms − 1."""
 
@@ -220,13 +161,96 @@ class SumOperation:
         return self._added(self.line.of.tree, arguments)
 
     def slopes(self, arguments: Mapping[str, Array], value: Array, wanted: Iterable[str]) -> dict[str, Array]:
-        return {name: self._added(partial(self.line.of, name), arguments) for name in wanted}
+        return {name: self.slope(arguments, name) for name in wanted}
+
+    def slope(self, arguments: Mapping[str, Array], name: str) -> Array:
+        """The derivative of the sum by one symbol."""
+        return self._added(partial(self.line.of, name), arguments)
 
     def _added(self, term: Node, arguments: Mapping[str, Array]) -> Array:
         total: Array = np.zeros(())
         for index in range(self.line.terms):
             total = total + evaluate(term, {**arguments, self.line.over: np.asarray(float(index))})
         return np.asarray(total)
+
+
+@dataclass(frozen=True, slots=True)
+class SolveOperation:
+    """The root of an equation between two bounds, by Newton's method kept inside a shrinking bracket."""
+
+    line: Solve
+
+    @property
+    def symbols(self) -> tuple[str, ...]:
+        names = dict.fromkeys(self.line.equation.symbols)
+        inside = {self.line.symbol}
+        if self.line.sum is not None:
+            names |= dict.fromkeys(self.line.sum.of.symbols)
+            inside |= {self.line.sum.symbol, self.line.sum.over}
+        return tuple(name for name in names if name not in inside)
+
+    @property
+    def residual(self) -> Node:
+        """Left side less right side; kept with the equation, so that it is compiled once."""
+        equation = self.line.equation.tree
+        assert isinstance(equation, Compare)
+        found = equation.memory.get(SolveOperation)
+        if found is None:
+            found = equation.memory[SolveOperation] = Binary("-", equation.first, equation.rest[0][1])
+        return found
+
+    def completed(self, known: Mapping[str, Array]) -> Mapping[str, Array]:
+        """Figures for every symbol of the equation: those known, and the sum taken from them."""
+        if self.line.sum is None:
+            return known
+        return {**known, self.line.sum.symbol: SumOperation(self.line.sum).value(known)}
+
+    def _slope(self, known: Mapping[str, Array], name: str) -> Array:
+        """The derivative of the residual by one symbol, through the sum too."""
+        slope = evaluate(partial(self.residual, name), known)
+        if self.line.sum is None:
+            return slope
+        through = evaluate(partial(self.residual, self.line.sum.symbol), known)
+        return np.asarray(slope + through * SumOperation(self.line.sum).slope(known, name))
+
+    def value(self, arguments: Mapping[str, Array]) -> Array:
+        shape = np.broadcast_shapes(*(np.shape(arguments[symbol]) for symbol in self.symbols))
+        known = {name: np.broadcast_to(arguments[name], shape).ravel() for name in self.symbols}
+        size = int(np.prod(shape, dtype=int))
+        return self._root(known, size).reshape(shape)
+
+    def _off(self, known: Mapping[str, Array], root: Array) -> tuple[Array, Mapping[str, Array]]:
+        """The residual at a value of the root, and the figures it was taken from."""
+        here = self.completed({**known, self.line.symbol: root})
+        return evaluate(self.residual, here), here
+
+    def _root(self, known: dict[str, Array], size: int) -> Array:
+        low, high = (np.full(size, bound) for bound in self.line.between)
+        at_low, at_high = self._off(known, low)[0], self._off(known, high)[0]
+        root = np.full(size, self.line.start)
+        root[~(at_low * at_high <= 0.0)] = np.nan
+        active = np.isfinite(root)
+        for _ in range(_ROOT_PASSES):
+            if not active.any():
+                break
+            off, here = self._off({name: figures[active] for name, figures in known.items()}, root[active])
+            below = np.sign(off) == np.sign(at_low[active])
+            low[active] = np.where(below, root[active], low[active])
+            high[active] = np.where(below, high[active], root[active])
+            with np.errstate(divide="ignore", invalid="ignore"):
+                step = root[active] - off / self._slope(here, self.line.symbol)
+            outside = ~((step > low[active]) & (step < high[active]))
+            step = np.where(outside, 0.5 * (low[active] + high[active]), step)
+            step = np.where(off == 0.0, root[active], step)
+            done = np.abs(step - root[active]) <= 4.0e-16 * np.abs(step)
+            root[active] = step
+            active[np.flatnonzero(active)[done]] = False
+        return root
+
+    def slopes(self, arguments: Mapping[str, Array], value: Array, wanted: Iterable[str]) -> dict[str, Array]:
+        known = self.completed({name: arguments[name] for name in self.symbols} | {self.line.symbol: value})
+        along = self._slope(known, self.line.symbol)
+        return {name: -self._slope(known, name) / along for name in wanted}
 
 
 class Step(Protocol):

@@ -12,7 +12,7 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 
 from calcbook.faults import Collector, Faults, nearest_names
-from calcbook.formulas import Relation, RelationFault, dimension, parse_expression
+from calcbook.formulas import Dimension, Relation, RelationFault, dimension, parse_expression
 from calcbook.library.cards import Assignment, Limit, Line, Method, Need, Solve, Table, Use
 from calcbook.library.operations import (
     LookupOperation,
@@ -374,7 +374,7 @@ def check_dimensions(program: Program) -> None:
         local = {symbol: dims[name] for symbol, name in step.inputs.items()}
         try:
             if isinstance(step.operation, SolveOperation):
-                dimension(relation, local | {step.operation.line.symbol: DIMENSIONLESS})
+                dimension(relation, local | _solved_dimensions(step.operation, local))
             elif isinstance(step.operation, SumOperation):
                 dims[step.name] = dimension(relation, local | {step.operation.line.over: DIMENSIONLESS})
             else:
@@ -394,6 +394,15 @@ def check_dimensions(program: Program) -> None:
             "the result has another dimension than its symbol",
         )
     collector.stop_if_any()
+
+
+def _solved_dimensions(operation: SolveOperation, local: Mapping[str, Dimension]) -> dict[str, Dimension]:
+    """Dimensions of what a solved line names itself: its root, and the sum of its equation."""
+    line = operation.line
+    found: dict[str, Dimension] = {line.symbol: DIMENSIONLESS}
+    if line.sum is not None:
+        found[line.sum.symbol] = dimension(line.sum.of, {**local, **found, line.sum.over: DIMENSIONLESS})
+    return found
 
 
 def _relation_of(operation: Operation) -> Relation | None:

@@ -459,7 +459,9 @@ class _Reader:
             return None
         bounds = tuple(self.number(item, item.place) for item in between.items)
         start = self.number(fields.node("start"), fields.place)
-        return Solve(fields.text("for"), (bounds[0], bounds[1]), start, equation, place)
+        node = fields.node("sum")
+        inner = self._sum(self.record(node, described.SUM), node.place) if node is not None else None
+        return Solve(fields.text("for"), (bounds[0], bounds[1]), start, equation, place, inner)
 
     def _sum(self, fields: Fields, place: Place) -> Sum | None:
         term = self.relation(scalar) if (scalar := fields.scalar("of")) is not None else None

@@ -336,7 +336,8 @@ def _line(line: Line) -> str:
         return f"{write_symbol(line.symbol)} = {write(line.relation)}"
     if isinstance(line, Solve):
         low, high = line.between
-        return f"{write_symbol(line.symbol)} from {write(line.equation)}, between {low:g} and {high:g}"
+        named = f", with {_line(line.sum)}" if line.sum is not None else ""
+        return f"{write_symbol(line.symbol)} from {write(line.equation)}{named}, between {low:g} and {high:g}"
     return f"{write_symbol(line.symbol)} = sum over {line.over} = 0 … {line.terms - 1} of {write(line.of)}"
 
 

@@ -10,6 +10,8 @@ from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from typing import Any
 
+import numpy as np
+
 from calcbook.chain.fluids import BoilingOperation, FixedOperation, LiquidOperation, PropertyOperation
 from calcbook.chain.outcome import CaseOutcome, StepRow
 from calcbook.chain.solve import Solution
@@ -25,6 +27,7 @@ from calcbook.formulas import (
     write_with_values,
 )
 from calcbook.formulas.names import written_name
+from calcbook.library.cards import Sum
 from calcbook.library.cards import Table as CardTable
 from calcbook.library.operations import LookupOperation, RelationOperation, SolveOperation, SumOperation
 from calcbook.library.reading import vocabulary
@@ -135,13 +138,14 @@ class StepTexts:
             return f"table {operation.table.name}, column {operation.column}"
         if isinstance(operation, SolveOperation):
             low, high = operation.line.between
+            inner = operation.line.sum
+            named = f", {written_name(inner.symbol)} the {_sum_words(inner)}" if inner is not None else ""
             return (
-                f"root {written_name(operation.line.symbol)} of {write(operation.line.equation)},"
+                f"root {written_name(operation.line.symbol)} of {write(operation.line.equation)}{named},"
                 f" between {number(low)} and {number(high)}"
             )
         if isinstance(operation, SumOperation):
-            line = operation.line
-            return f"sum of {write(line.of)} for {line.over} = 0 to {line.terms - 1}"
+            return _sum_words(operation.line)
         if isinstance(operation, PropertyOperation | BoilingOperation | FixedOperation):
             return "property"
         if isinstance(operation, LiquidOperation):
@@ -347,11 +351,15 @@ def _cell_word(table: CardTable, symbol: str, value: float) -> str:
     return ""
 
 
+def _sum_words(line: Sum) -> str:
+    return f"sum of {write(line.of)} for {line.over} = 0 to {line.terms - 1}"
+
+
 def _both_sides(operation: SolveOperation, arguments: Values, root: float) -> str:
     """The equation with the root put in: both sides give the same figure."""
     equation = operation.line.equation.tree
     assert isinstance(equation, Compare)
-    known = {**arguments, operation.line.symbol: root}
+    known = operation.completed({**arguments, operation.line.symbol: np.asarray(root)})
     return " = ".join(_side(side, known) for side in (equation.first, equation.rest[0][1]))
 
 
