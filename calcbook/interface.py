@@ -15,6 +15,7 @@ from calcbook.chain.types import Chain
 from calcbook.faults import Collector, Fault, Faults, Place
 from calcbook.library import Library
 from calcbook.links import ISSUED, Links, Source
+from calcbook.rating.rate import rated
 
 HOUSE_CARDS = "cards"
 
@@ -122,7 +123,8 @@ def _solved(calculation: Calculation, library: Library, collector: Collector) ->
     chain = build(calculation, library, collector)
     if chain is not None and library.house is not None:
         check_house_cards(chain, collector)
-    return analyse(chain, collector) if chain is not None else None
+    solved = analyse(chain, collector) if chain is not None else None
+    return rated(solved) if solved is not None else None
 
 
 def check_house_cards(chain: Chain, collector: Collector) -> None:

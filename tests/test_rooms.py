@@ -31,6 +31,7 @@ ORDER = (
     "library",
     "calcfile",
     "chain",
+    "rating",
     "record",
     "links",
     "interface",
@@ -57,7 +58,7 @@ OWNERS = {
     "platformdirs": {"properties", "book"},
     "markdown_it": {"record"},
     "scipy": {"formulas", "chain"},
-    "numpy": {"formulas", "properties", "library", "chain", "record", "revisions"},
+    "numpy": {"formulas", "properties", "library", "chain", "rating", "record", "revisions"},
 }
 # A run never asks the machine about itself: same input, same bytes. Sign-off dates are compared with today
 # in `revisions`; the cache folder is named by the environment in `properties`.

@@ -129,6 +129,36 @@ class Stream:
 
 
 @dataclass(frozen=True, slots=True)
+class DutySide:
+    """One stream of the duty, from its inlet to its outlet; a saturated stream has neither."""
+
+    stream: str
+    inlet: Value | None
+    outlet: Value | None
+    place: Place
+
+
+@dataclass(frozen=True, slots=True)
+class Duty:
+    """What the unit has to transfer: arrangement of the flows, both streams, parts that it is cut into."""
+
+    arrangement: str
+    shells: int
+    hot: DutySide
+    cold: DutySide
+    parts: int
+    place: Place
+
+    @property
+    def sides(self) -> dict[str, DutySide]:
+        return {"hot": self.hot, "cold": self.cold}
+
+    def names(self, stream: str) -> bool:
+        """Whether a stream stands on one of the sides."""
+        return stream in (self.hot.stream, self.cold.stream)
+
+
+@dataclass(frozen=True, slots=True)
 class Geometry:
     """Shape and the dimensions that stand in the file, by their key."""
 
@@ -277,3 +307,4 @@ class Calculation:
         return tuple(name for name in self.cases if name.startswith("at "))
 
     broken: frozenset[str] = frozenset()
+    duty: Duty | None = None

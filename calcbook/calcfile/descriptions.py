@@ -161,12 +161,46 @@ NON_CONDENSABLE = Description(
     "gas that does not condense, in the vapour",
     (Key("mole fraction", "mole fraction in the vapour", "node", of=SOURCED, required=True),),
 )
+ARRANGEMENTS = (
+    "counterflow",
+    "parallel flow",
+    "shell and tube",
+    "crossflow both unmixed",
+    "crossflow hot mixed",
+    "crossflow cold mixed",
+    "crossflow both mixed",
+)
+DUTY_SIDE = Description(
+    "a side of the duty",
+    "one stream from its inlet to its outlet",
+    (
+        Key("stream", "name of the stream", "name", required=True),
+        Key("inlet", "inlet temperature; none for a saturated stream", "node", of=SOURCED),
+        Key("outlet", "outlet temperature; left out, it is found", "node", of=SOURCED),
+    ),
+)
+DUTY = Description(
+    "the duty",
+    "what the unit has to transfer, and how its flows are arranged",
+    (
+        Key("arrangement", "how the flows are arranged", "choice", choices=ARRANGEMENTS, required=True),
+        Key("shells", "shells in series, each of one shell pass and an even number of tube passes", "name"),
+        Key("hot", "the stream that cools", "mapping", of=DUTY_SIDE, required=True),
+        Key("cold", "the stream that warms", "mapping", of=DUTY_SIDE, required=True),
+        Key("parts", "equal parts of the duty along the unit, each with its own U", "name", example="4"),
+    ),
+)
 STREAM = Description(
     "a stream",
     "a fluid with its state and flow",
     (
         Key("fluid", "name of a fluid, or a mixture, table or constants", "node", of=FLUID, required=True),
-        Key("temperature", "mean bulk temperature, or saturation", "node", of=SOURCED, required=True),
+        Key(
+            "temperature",
+            "mean bulk temperature, or saturation; left out, the mean of its ends in the duty",
+            "node",
+            of=SOURCED,
+        ),
         Key("pressure", "pressure; needed for gases", "node", of=SOURCED),
         Key("flow", "mass flow, volume flow or speed, told apart by its unit", "node", of=FLOW),
         Key("phase", "phase the engineer states", "choice", choices=("liquid", "gas")),
@@ -412,7 +446,7 @@ FILE = Description(
             of=Description("cases", "", free=Key("<case>", "name of a case", "mapping")),
         ),
         Key("accept", "answers to failed checks", "list", of=ACCEPT),
-        Key("duty", "duty of the unit", "node", later=True),
+        Key("duty", "duty of the unit", "mapping", of=DUTY),
         Key("sweep", "sweep over givens", "node", later=True),
         Key(
             "evaluate at",

@@ -17,6 +17,7 @@ from calcbook.calcfile.calculation import (
     Criterion,
     Deposit,
     Derived,
+    Duty,
     Fins,
     FluidText,
     Geometry,
@@ -29,6 +30,7 @@ from calcbook.calcfile.calculation import (
     Tolerance,
     Value,
 )
+from calcbook.calcfile.duty import read_duty
 from calcbook.calcfile.links import LinkText, Resolve
 from calcbook.calcfile.meaning import meaning_of
 from calcbook.calcfile.tablefile import read_table_file
@@ -129,10 +131,10 @@ def read_document(
     resolve: Resolve | None = None,
 ) -> Calculation:
     """As ``read_calculation``, from a document that is already read."""
-    return _Reader(document, settings, collector, folder, resolve).calculation()
+    return Reader(document, settings, collector, folder, resolve).calculation()
 
 
-class _Reader:
+class Reader:
     def __init__(
         self,
         document: Document,
@@ -161,6 +163,9 @@ class _Reader:
         self.fluids = {key.text: self.fluid_record(key.text, value) for key, value in self.entries("fluids")}
         terms = self.terms(self.fields.node("resistances"))
         cases = self.cases(givens)
+        duty = read_duty(self)
+        streams = {key.text: self.stream(key, value) for key, value in self.entries("streams")}
+        self.check_stream_temperatures(streams, duty)
         return Calculation(
             file=self.document.name,
             number=self.number(head),
@@ -174,7 +179,7 @@ class _Reader:
             givens=givens,
             derived=derived,
             assumptions=self.assumptions(),
-            streams={key.text: self.stream(key, value) for key, value in self.entries("streams")},
+            streams=streams,
             geometry=self.geometry(),
             resistances=terms if self.terms_hold else (),
             acceptance=self.acceptance(),
@@ -185,6 +190,7 @@ class _Reader:
             meaning=self.meaning(),
             place=self.place,
             broken=frozenset(self.broken),
+            duty=duty,
         )
 
     def meaning(self) -> object:
@@ -598,6 +604,20 @@ class _Reader:
             key.place,
             self.non_condensable(fields.node("non-condensable")),
         )
+
+    def check_stream_temperatures(self, streams: Mapping[str, Stream], duty: Duty | None) -> None:
+        """A stream without a temperature takes the mean of its ends: it must stand in the duty with an inlet."""
+        for name, stream in streams.items():
+            if stream.temperature is not None:
+                continue
+            sides = duty.sides.values() if duty is not None else ()
+            if not any(side.stream == name and side.inlet is not None for side in sides):
+                self.collector.add(
+                    "key-missing",
+                    stream.place,
+                    f"the stream `{shown(name)}` has no temperature",
+                    expected="temperature: …, or its inlet in the duty",
+                )
 
     def non_condensable(self, node: Node | None) -> Value | None:
         if node is None:

@@ -10,8 +10,13 @@ from dataclasses import replace
 import numpy as np
 
 from calcbook.calcfile.calculation import Criterion
+from calcbook.chain.allowance import largest_allowances
 from calcbook.chain.checks import apply_acceptances, evaluate_check
 from calcbook.chain.circuit import branch_coefficient
+from calcbook.chain.completing import completed
+from calcbook.chain.duty import OWNER as DUTY
+from calcbook.chain.duty import duty_results, is_of_duty
+from calcbook.chain.ends import end_checks
 from calcbook.chain.films import SATURATED_SIDES
 from calcbook.chain.findings import (
     assumptions_of,
@@ -99,10 +104,14 @@ class _Analysis:
         self.collector = collector
         self.dimensions = dict(chain.dimensions)
         self.used_cards: dict[str, str] = dict(chain.cards)
+        self.inputs: dict[str, dict[str, np.ndarray]] = {}
 
     def solved(self) -> Solved | None:
         names = ("", *self.chain.calculation.cases)
-        findings = {name: stream_findings(self.chain, name, self.collector) for name in names}
+        self.inputs = {name: completed(self.chain, self.chain.case_inputs(name)) for name in names}
+        findings = {
+            name: stream_findings(self.chain, name, self.inputs[name], self.collector) for name in names
+        }
         if self.collector:
             return None
         cases = []
@@ -129,7 +138,7 @@ class _Analysis:
     # -- one case -----------------------------------------------------------------------------------
 
     def _case(self, name: str, state_items: tuple[OpenItem, ...]) -> CaseOutcome | None:
-        inputs = self.chain.case_inputs(name)
+        inputs = self.inputs[name]
         solutions = {condition: solve(self.chain, inputs, condition) for condition in CONDITIONS}
         for condition, solution in solutions.items():
             if not bool(np.all(solution.converged)) or not np.isfinite(
@@ -141,8 +150,8 @@ class _Analysis:
                     return None
                 raise NotConverged(self.chain.calculation.number, name, condition)
             evaluate_pressure_drops(self.chain, solution)
-        results = self._results(solutions)
-        checks = self._checks(name, solutions)
+        results = self._results(solutions, inputs)
+        checks = (*self._checks(name, solutions), *end_checks(self.chain, name, inputs, solutions))
         for check in checks:
             if check.level == "stop" and check.state == "outside":
                 self._report_stop(check)
@@ -206,6 +215,8 @@ class _Analysis:
     def _report_stop(self, check: CheckResult) -> None:
         term = next((term for term in self.chain.calculation.resistances if term.name == check.owner), None)
         place = term.place if term is not None else self.chain.calculation.place
+        if check.owner == DUTY and self.chain.calculation.duty is not None:
+            place = self.chain.calculation.duty.place
         self.collector.add(
             "limit-stops",
             place,
@@ -216,7 +227,9 @@ class _Analysis:
 
     # -- results ------------------------------------------------------------------------------------
 
-    def _results(self, solutions: Mapping[str, Solution]) -> dict[str, Result]:
+    def _results(
+        self, solutions: Mapping[str, Solution], inputs: Mapping[str, np.ndarray]
+    ) -> dict[str, Result]:
         kinds = vocabulary()
         results: dict[str, Result] = {}
 
@@ -289,6 +302,14 @@ class _Analysis:
                     "area resistance",
                     f"resistance of {element.name} on the basis area, {condition}",
                 )
+        duty_results(self.chain, solutions, put)
+        for name, value in largest_allowances(self.chain, inputs, solutions[SERVICE]).items():
+            put(
+                f"largest_allowance {name}",
+                value,
+                "area resistance",
+                f"largest resistance of {name} with which the installed area carries the duty",
+            )
         self._stream_results(solutions[SERVICE], put)
         for _, branch, drop in drops(self.chain):
             for condition, solution in reversed(list(solutions.items())):
@@ -404,7 +425,8 @@ class _Analysis:
     def _chains(self, solutions: Mapping[str, Solution]) -> tuple[TermChain, ...]:
         """The rows of every term, each step once, at the term that uses it first."""
         owners = {name for element in self.chain.elements for name in _names(element)}
-        shared = tuple(step for step in self.chain.steps if step.owner not in owners)
+        duty = tuple(step for step in self.chain.steps if is_of_duty(step))
+        shared = tuple(step for step in self.chain.steps if step.owner not in owners and step not in duty)
         chains = []
         if shared:
             chains.append(
@@ -415,7 +437,9 @@ class _Analysis:
                     (),
                 )
             )
-        seen = {step.id for step in shared}
+        if duty:
+            chains.append(TermChain(DUTY, "heat balance of both streams", self._rows(duty, solutions), ()))
+        seen = {step.id for step in (*shared, *duty)}
         for element in self.chain.elements:
             steps = [step for step in self.chain.steps if step.owner in _names(element)]
             notes: list[str] = []
@@ -812,7 +836,8 @@ class _Analysis:
     def _sensitivity(self, base: CaseOutcome) -> tuple[SensitivityRow, ...]:
         """1 % of each figure (1 K of a temperature), ranked by what it moves U in service by."""
         name = self.chain.results["U"]
-        slopes = derivatives(self.chain, self.chain.case_inputs(""), SERVICE, (name,))[name]
+        inputs = self.chain.case_inputs("")
+        slopes = derivatives(self.chain, inputs, SERVICE, (name,), base.solutions[SERVICE])[name]
         reference = base.results["U_service"].value
         rows = []
         for key, slope in slopes.items():

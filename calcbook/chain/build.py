@@ -8,6 +8,7 @@ from calcbook.calcfile import Calculation
 from calcbook.calcfile.calculation import Derived, Term, Value
 from calcbook.calcfile.links import CURRENT
 from calcbook.chain.circuit import Circuit
+from calcbook.chain.duty import DutyLayout
 from calcbook.chain.films import FilmScope
 from calcbook.chain.fins import FinnedSide, check_finned_situation, lay_out_fins, lay_out_fins_layer
 from calcbook.chain.petroleum import lay_out_cards
@@ -55,16 +56,21 @@ class _Builder:
         self.checks: list[ChainCheck] = []
         self.early: frozenset[str] = frozenset()
         self.finned: FinnedSide | None = None
+        self.duty = (
+            DutyLayout(self.scope, library, calculation.duty) if calculation.duty is not None else None
+        )
 
     def chain(self) -> Chain | None:
         calculation, scope = self.calculation, self.scope
         self._givens()
         self._derived()
+        means = self.duty.means() if self.duty is not None else {}
         self.streams = {
             name: state
             for name, stream in calculation.streams.items()
-            if (state := lay_out_stream(scope, stream, self.library)) is not None
+            if (state := lay_out_stream(scope, stream, self.library, means.get(name, ""))) is not None
         }
+        has_duty = self.duty is not None and self.duty.balance(self.streams)
         self.checks += lay_out_cards(scope, self.library, self.streams)
         terms = calculation.resistances
         walls = tuple(term for term in terms if term.kind == "wall")
@@ -90,8 +96,34 @@ class _Builder:
             self._mark_unused()
             return None
         circuit, results = Circuit(scope, elements, shape, basis, self.streams).lay_out()
-        self.checks += self._heat_balance(elements, results)
-        return self._finished(elements, shape, basis, circuit, results)
+        if has_duty:
+            circuit, results = self._rated(elements, shape, basis, circuit, results)
+        else:
+            self.checks += self._heat_balance(elements, results)
+        return self._finished(elements, shape, basis, circuit, results) if not self.collector else None
+
+    def _rated(
+        self,
+        elements: tuple[Element, ...],
+        shape: Shape,
+        basis: int,
+        circuit: tuple[ChainStep, ...],
+        results: dict[str, str],
+    ) -> tuple[tuple[ChainStep, ...], dict[str, str]]:
+        """The circuit and its results with those of the duty."""
+        assert self.duty is not None
+        before = frozenset(self.scope.steps)
+        if shape.per_metre:
+            self.collector.add(
+                "duty-incomplete",
+                self.duty.duty.place,
+                "the geometry gives the area of 1 m only",
+                expected="length: … in the geometry",
+            )
+        self.duty.rating(results, shape.surfaces[basis].area, elements)
+        self.checks += self.duty.checks
+        added = tuple(step for name, step in self.scope.steps.items() if name not in before)
+        return (*circuit, *added), {**results, **self.duty.results}
 
     def _heat_balance(self, elements: tuple[Element, ...], results: dict[str, str]) -> list[ChainCheck]:
         """A caution where a stream would change its temperature by more than its stated mean can stand for."""
@@ -156,6 +188,7 @@ class _Builder:
                 case: {symbol: self._restated_value(symbol, given.value) for symbol, given in changes.items()}
                 for case, changes in self.calculation.cases.items()
             },
+            open_figures=tuple(self.duty.open_figures) if self.duty is not None else (),
         )
 
     def _restated_value(self, symbol: str, value: Value) -> float:

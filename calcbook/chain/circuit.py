@@ -121,7 +121,8 @@ class Circuit:
             "heat flow",
         )
 
-        self._implied_changes()
+        if self.scope.calculation.duty is None:
+            self._implied_changes()
 
     def _implied_changes(self) -> None:
         """What the heat flow does to each stream of one phase whose mass flow is known: dT = Q/(m·cp).

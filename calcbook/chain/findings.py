@@ -41,13 +41,15 @@ def celsius(temperature: float, digits: int = 4) -> str:
 # --- states of streams ------------------------------------------------------------------------------
 
 
-def stream_findings(chain: Chain, case: str, collector: Collector) -> tuple[OpenItem, ...]:
+def stream_findings(
+    chain: Chain, case: str, inputs: Mapping[str, np.ndarray], collector: Collector
+) -> tuple[OpenItem, ...]:
     """Check the bulk state of every stream of a case, and that walls are not turned inside out.
 
     Faults (a liquid that is vapour, two phases, outside the fluid's range) go to the collector with the
     stream's place; what only needs the engineer's eye becomes an open item.
     """
-    values: dict[str, Any] = dict(chain.constants) | chain.case_inputs(case)
+    values: dict[str, Any] = {**chain.constants, **inputs}
     run(chain.steps, values)
     _check_surfaces(chain, values, collector)
     _check_directions(chain, values, collector, case)
@@ -337,12 +339,13 @@ def assumptions_of(chain: Chain, solutions: Mapping[str, Solution]) -> tuple[Run
                     f"stream {state.name}",
                 )
     if chain.has_temperatures:
-        say(
-            "conditions",
-            "Clean and service are compared at the stated bulk temperatures.",
-            "no duty is stated",
-            "U",
-        )
+        if "duty" in chain.results:
+            text, reason = "at the same ends of the streams", "the duty is stated"
+        elif chain.calculation.duty is not None:
+            text, reason = "at the ends that the unit reaches in service", "the outlets are not stated"
+        else:
+            text, reason = "at the stated bulk temperatures", "no duty is stated"
+        say("conditions", f"Clean and service are compared {text}.", reason, "U")
     sides = {layer.surface for layer in chain.elements if getattr(layer, "kind", "") == "fouling"}
     if not sides:
         say(

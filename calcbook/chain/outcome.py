@@ -3,8 +3,9 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 
+from calcbook.chain.rating_outcome import Rating
 from calcbook.chain.solve import Solution
 from calcbook.chain.types import Chain, ChainStep, Input, OpenItem, RunnerAssumption
 from calcbook.quantities import QuantityKind
@@ -193,7 +194,7 @@ class Solved:
     sensitivity: tuple[SensitivityRow, ...]
     cards: Mapping[str, str]
     governing: str
-    warnings: tuple[str, ...] = field(default=())
+    rating: Rating | None = None
 
     @property
     def base(self) -> CaseOutcome:

@@ -11,7 +11,8 @@ from collections.abc import Mapping
 import numpy as np
 
 from calcbook.chain.circuit import branch_coefficient
-from calcbook.chain.solve import Solution, outward, solve
+from calcbook.chain.completing import completed
+from calcbook.chain.solve import Solution, closed, outward
 from calcbook.chain.types import CLEAN, Branch, Chain, Group, Layer
 from calcbook.library.operations import Slopes, run
 
@@ -33,8 +34,61 @@ def derivatives(
     A result that does not depend on an input has no entry for it. ``solution`` is that of the same inputs
     and condition, where it is there already.
     """
-    if solution is None:
-        solution = solve(chain, inputs, condition)
+    if chain.open_figures:
+        return _through_open_figures(chain, inputs, condition, wanted, solution)
+    return _direct(chain, inputs, condition, wanted, solution or closed(chain, inputs, condition))
+
+
+def _through_open_figures(
+    chain: Chain,
+    inputs: Mapping[str, Array],
+    condition: str,
+    wanted: tuple[str, ...],
+    solution: Solution | None,
+) -> dict[str, dict[str, Array]]:
+    """Slopes where figures are left open: those at fixed figures, and those by way of each open figure.
+
+    An open figure x agrees with the step X(x, g) that gives it, so dx/dg = (1 − ∂X/∂x)⁻¹ ∂X/∂g.
+    """
+    whole = completed(chain, inputs)
+    figures = [item.id for item in chain.open_figures]
+    partial: dict[str, dict[str, Array]] = {}
+    for own in dict.fromkeys(item.condition for item in chain.open_figures):
+        found = tuple(item.found for item in chain.open_figures if item.condition == own)
+        partial |= _direct(chain, whole, own, found, closed(chain, whole, own))
+    direct = _direct(chain, whole, condition, wanted, solution or closed(chain, whole, condition))
+    shape = np.broadcast_shapes(*(np.shape(value) for value in whole.values()))
+    lines = [partial[item.found] for item in chain.open_figures]
+    names = [name for name in inputs if any(name in line for line in lines)]
+    size = int(np.prod(shape, dtype=int))
+    matrix = np.zeros((size, len(figures), len(figures)))
+    right = np.zeros((size, len(figures), max(len(names), 1)))
+    for row, line in enumerate(lines):
+        for column, name in enumerate(figures):
+            matrix[:, row, column] = (row == column) - np.ravel(line.get(name, np.zeros(shape)))
+        for column, name in enumerate(names):
+            right[:, row, column] = np.ravel(line.get(name, np.zeros(shape)))
+    moved = _solved(matrix, right)
+    total: dict[str, dict[str, Array]] = {}
+    for name, slopes in direct.items():
+        total[name] = {key: slope for key, slope in slopes.items() if key not in figures}
+        for row, figure in enumerate(figures):
+            if figure not in slopes:
+                continue
+            for column, key in enumerate(names):
+                part = slopes[figure] * moved[:, row, column].reshape(shape)
+                total[name][key] = total[name].get(key, np.zeros(shape)) + part
+    return total
+
+
+def _direct(
+    chain: Chain,
+    inputs: Mapping[str, Array],
+    condition: str,
+    wanted: tuple[str, ...],
+    solution: Solution,
+) -> dict[str, dict[str, Array]]:
+    """Slopes with respect to every one of the inputs, none of which is left open."""
     shape = solution.converged.shape
     result: dict[str, dict[str, Array]] = {name: {} for name in wanted}
     with np.errstate(all="ignore"):
@@ -71,6 +125,7 @@ class _Trace:
         self.shape = solution.converged.shape
         self.values: dict[str, Array] = dict(chain.constants)  # type: ignore[arg-type]
         self.slopes: Slopes = {}
+        self.names = tuple(inputs)
         for name, value in inputs.items():
             self.values[name] = self._part(np.asarray(value, dtype=float))
             self.slopes[name] = {INPUT + name: ONE}
@@ -197,7 +252,7 @@ class _Trace:
     def _moved(self, laws: list[Line]) -> dict[str, Line]:
         """Slopes of Q and of every drop with respect to the inputs, sample by sample."""
         names = [f"{UNKNOWN}{number}" for number in range(len(laws))]
-        seeds = [INPUT + name for name in self.chain.inputs if any(INPUT + name in law for law in laws)]
+        seeds = [INPUT + name for name in self.names if any(INPUT + name in law for law in laws)]
         count = len(self.samples)
         matrix = np.zeros((count, len(names), len(names)))
         right = np.zeros((count, len(names), max(len(seeds), 1)))

@@ -75,8 +75,24 @@ def solve(
     """Solve a chain for one condition on SI arrays of its inputs (by id, broadcast together).
 
     ``forced`` puts a candidate in place of a film's own choice, for the cross-check. ``keep`` names the
-    steps whose values are wanted; without it all are kept, which for many samples takes much memory.
+    steps whose values are wanted; without it all are kept, which for many samples takes much memory. Figures
+    that the file leaves open are found first, unless they stand in ``inputs``.
     """
+    if chain.open_figures:
+        from calcbook.chain.completing import completed
+
+        inputs = completed(chain, inputs, forced)
+    return closed(chain, inputs, condition, forced, keep)
+
+
+def closed(
+    chain: Chain,
+    inputs: Mapping[str, Array],
+    condition: str,
+    forced: Mapping[str, Candidate] | None = None,
+    keep: Collection[str] | None = None,
+) -> Solution:
+    """As ``solve``, for inputs that leave nothing open."""
     shape = np.broadcast_shapes(*(np.shape(value) for value in inputs.values()))
     size = int(np.prod(shape, dtype=int))
     if size == 0:

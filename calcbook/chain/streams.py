@@ -23,12 +23,16 @@ HUMIDITY = "0.621945*phi*x_ws/(1 - phi*x_ws)"
 FLOW_KINDS = ("mass flow", "volume flow", "speed")
 
 
-def lay_out_stream(scope: Scope, stream: Stream, library: Library) -> StreamState | None:
-    """The state and flow of a stream as ids; None when its fluid or temperature cannot be read."""
+def lay_out_stream(scope: Scope, stream: Stream, library: Library, mean: str = "") -> StreamState | None:
+    """The state and flow of a stream as ids; None when its fluid or temperature cannot be read.
+
+    ``mean`` is the id of the temperature of a stream that states none: the mean of its ends.
+    """
     owner = f"stream {stream.name}"
     fluid = _fluid(scope, stream.fluid, library) if stream.fluid is not None else None
     on_line = is_saturation(scope, stream.temperature)
     temperature = "" if on_line else scope.value(stream.temperature, "temperature", owner, "temperature")
+    temperature = temperature or (mean if stream.temperature is None else "")
     pressure = scope.value(stream.pressure, "pressure", owner, "pressure")
     saturation = temperature if fluid is not None and not pressure and has_saturation(fluid) else ""
     if on_line:
@@ -48,8 +52,7 @@ def lay_out_stream(scope: Scope, stream: Stream, library: Library) -> StreamStat
     flow = scope.value(stream.flow, flow_kind, owner, "flow") if flow_kind else ""
     if stream.flow is not None and not flow:
         flow, flow_kind = scope.unread(vocabulary()["speed"]), "speed"
-    assert stream.temperature is not None
-    place = stream.temperature.place
+    place = stream.temperature.place if stream.temperature is not None else stream.place
     state = StreamState(
         stream.name,
         fluid,

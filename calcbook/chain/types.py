@@ -260,6 +260,20 @@ class StreamState:
         return inputs
 
 
+@dataclass(frozen=True, slots=True)
+class OpenFigure:
+    """A figure that the file leaves open: its id, the step that gives it, and the condition it belongs to.
+
+    It is looked for from ``near`` towards ``far``, two ids of figures that stand before the circuit is closed.
+    """
+
+    id: str
+    found: str
+    condition: str
+    near: str
+    far: str
+
+
 @dataclass(frozen=True)
 class Chain:
     """A calculation ready to be solved."""
@@ -283,6 +297,7 @@ class Chain:
     dimensions: Mapping[str, tuple]
     per_metre: bool = False
     restated: Mapping[str, Mapping[str, float]] = field(default_factory=dict)
+    open_figures: tuple[OpenFigure, ...] = ()
 
     @property
     def inner(self) -> Group:
@@ -350,6 +365,7 @@ __all__ = [
     "Group",
     "Input",
     "Layer",
+    "OpenFigure",
     "OpenItem",
     "PressureDrop",
     "RunnerAssumption",

@@ -14,6 +14,7 @@ from calcbook.record.sections.cases import cases, sensitivity
 from calcbook.record.sections.chain import chain
 from calcbook.record.sections.circuit import circuit
 from calcbook.record.sections.closing import closing_line, references, revision_history, sign_off
+from calcbook.record.sections.duty import two_ways
 from calcbook.record.sections.head import brief, changes, purpose, title_block
 from calcbook.record.sections.inputs import assumptions, givens
 from calcbook.record.sections.review import cautions, review
@@ -31,6 +32,7 @@ SECTIONS: tuple[Callable[[Page], list[Block]], ...] = (
     chain,
     validity,
     cross_check,
+    two_ways,
     sensitivity,
     cases,
     review,

@@ -14,6 +14,7 @@ from pathlib import Path
 from calcbook.calcfile import read_document
 from calcbook.calcfile.calculation import Settings
 from calcbook.chain.build import build
+from calcbook.chain.completing import completed
 from calcbook.chain.findings import stream_findings
 from calcbook.chain.types import Chain, ChainStep, Element, Layer
 from calcbook.documents import Document, Mapping, Node, Scalar
@@ -134,7 +135,7 @@ def with_inputs(chain: Chain, values: dict[str, float]) -> Chain:
 def has_sound_states(chain: Chain) -> bool:
     """Whether every stream of a chain is in a state that its fluid can have."""
     collector = Collector()
-    stream_findings(chain, "", collector)
+    stream_findings(chain, "", completed(chain, chain.case_inputs("")), collector)
     return not collector
 
 

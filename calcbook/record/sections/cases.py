@@ -16,6 +16,7 @@ from calcbook.record.numbers import (
     unit_text,
 )
 from calcbook.record.page import Page, case_name, counted
+from calcbook.record.sections.duty import day_one_blocks
 from calcbook.record.sections.head import criterion_row
 from calcbook.record.sections.validity import verdict
 
@@ -64,6 +65,11 @@ def _uncertainty(page: Page) -> list[Block]:
 
 
 def cases(page: Page) -> list[Block]:
+    """Each named case, then the clean unit on its first day."""
+    return [*_named_cases(page), *day_one_blocks(page)]
+
+
+def _named_cases(page: Page) -> list[Block]:
     """Each named case with what it restates, its results, checks and open items."""
     blocks: list[Block] = [Heading(2, "12. Cases")]
     if not page.has_cases:

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterable
 from itertools import groupby
 
+from calcbook.chain.duty import is_of_duty
 from calcbook.chain.outcome import StepRow, TermChain
 from calcbook.chain.types import Branch, Group, Layer
 from calcbook.formulas import number_text
@@ -75,10 +76,21 @@ class _Writer:
         return ()
 
     def circuit(self) -> list[Block]:
-        """Resistances on the basis area, their sum, U on each surface; then every result by name."""
-        return [
+        """Resistances on the basis area, their sum, U on each surface; the duty; then every result by name."""
+        rows = [row for row in self.page.base.circuit if not is_of_duty(row.step)]
+        rated = [row for row in self.page.base.circuit if is_of_duty(row.step)]
+        blocks: list[Block] = [
             Heading(3, "Circuit: resistances in series"),
-            *_chain_table(self.lines(self.page.base.circuit)),
+            *_chain_table(self.lines(rows)),
+        ]
+        if rated:
+            blocks += [
+                Heading(3, "Duty: areas and effectiveness"),
+                *_chain_table(self.lines(rated)),
+                *self._constants(rated),
+            ]
+        return [
+            *blocks,
             Heading(3, "Results by name"),
             Paragraph("Criteria and other calculations may name these results."),
             Table(("Name", "Value", "Meaning"), tuple(self._results())),

@@ -9,6 +9,7 @@ from calcbook.chain.types import CONDITIONS, Group
 from calcbook.record.blocks import Block, Code, Heading, Paragraph, Table
 from calcbook.record.numbers import NOT_KNOWN, PLAIN_DIGITS, celsius, fixed, number, percent
 from calcbook.record.page import Page
+from calcbook.record.sections.duty import area_blocks
 
 PER_MARK = 0.025
 WHOLE_ROUNDING = 1e-9
@@ -26,7 +27,7 @@ def circuit(page: Page) -> list[Block]:
     ]
     for condition in reversed(CONDITIONS):
         blocks += [Heading(3, f"Circuit, {condition}"), _table(page, condition), *_branches(page, condition)]
-    return blocks
+    return [*blocks, *area_blocks(page)]
 
 
 # --- drawing ----------------------------------------------------------------------------------------

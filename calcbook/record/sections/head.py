@@ -17,6 +17,7 @@ from calcbook.record.numbers import (
     with_unit,
 )
 from calcbook.record.page import Page, case_name, counted
+from calcbook.record.sections.duty import brief_rows
 
 
 def confirmation(page: Page) -> str:
@@ -96,12 +97,13 @@ def _brief_rows(page: Page) -> list[tuple[str, str, str]]:
         rows.append(("Cleanliness", number(cleanliness.value, CONCLUSION_DIGITS), "U_service/U_clean"))
     if excess is not None:
         rows.append(("Excess surface for fouling", percent(excess.value), "U_clean/U_service − 1"))
+    rows += brief_rows(page)
     for name, title in (
         ("heat_flow_service", "Heat flow in service, inside to outside"),
         ("heat_flow_clean", "Heat flow clean, inside to outside"),
     ):
         result = page.result(name)
-        if result is not None:
+        if result is not None and page.calculation.duty is None:
             suffix = " (for 1 m of length)" if page.chain.per_metre else ""
             value = in_report_unit(result.value, result.kind, page.calculation.report, PLAIN_DIGITS)
             rows.append((title + suffix, value, "U·A times the difference of the bulk temperatures"))

@@ -1,0 +1,102 @@
+"""The duty of a calculation file: arrangement, both streams with their ends, parts."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+from calcbook.calcfile import descriptions as described
+from calcbook.calcfile.calculation import Duty, DutySide
+from calcbook.documents import Fields, read_mapping
+from calcbook.faults import Place, nearest_names, shown
+
+if TYPE_CHECKING:
+    from calcbook.calcfile.reading import Reader
+
+LARGEST_COUNT = 50
+# Only flows that pass each other end to end can be cut into parts that follow each other.
+CUT_ARRANGEMENTS = ("counterflow", "parallel flow")
+
+
+def read_duty(reader: Reader) -> Duty | None:
+    """The duty of a file; None where none is stated or a side of it is missing."""
+    node = reader.fields.node("duty")
+    if node is None:
+        return None
+    fields = read_mapping(node, described.DUTY, reader.collector, node.place)
+    hot, cold = (_side(reader, fields, name) for name in ("hot", "cold"))
+    if hot is None or cold is None:
+        return None
+    duty = Duty(
+        fields.text("arrangement"),
+        _count(reader, fields, "shells"),
+        hot,
+        cold,
+        _count(reader, fields, "parts"),
+        node.place,
+    )
+    _check(reader, duty, fields)
+    return duty
+
+
+def _side(reader: Reader, fields: Fields, name: str) -> DutySide | None:
+    node = fields.node(name)
+    if node is None:
+        return None
+    side = read_mapping(node, described.DUTY_SIDE, reader.collector, node.place)
+    return DutySide(
+        side.text("stream"), reader.value(side.node("inlet")), reader.value(side.node("outlet")), node.place
+    )
+
+
+def _count(reader: Reader, fields: Fields, name: str) -> int:
+    """A whole number from 1; 1 where nothing is stated."""
+    scalar = fields.scalar(name)
+    if scalar is None:
+        return 1
+    if not scalar.text.isascii() or not scalar.text.isdigit() or not 1 <= int(scalar.text) <= LARGEST_COUNT:
+        reader.collector.add(
+            "count-unreadable",
+            scalar.place,
+            f"`{name}` is a whole number",
+            found=shown(scalar.text),
+            expected=f"1 to {LARGEST_COUNT}",
+        )
+        return 1
+    return int(scalar.text)
+
+
+def _check(reader: Reader, duty: Duty, fields: Fields) -> None:
+    """What the text alone shows: streams that exist, counts that fit the arrangement, an inlet for an outlet."""
+    known = [key.text for key, _ in reader.entries("streams")]
+    for name, side in duty.sides.items():
+        if side.stream and side.stream not in known:
+            reader.collector.add(
+                "stream-unknown",
+                side.place,
+                f"there is no stream `{shown(side.stream)}`",
+                found=shown(side.stream),
+                expected=", ".join(known) or "a stream",
+                nearest=nearest_names(side.stream, known),
+            )
+        if side.inlet is None and side.outlet is not None:
+            _refuse(reader, side.place, f"the {name} side has an outlet and no inlet", "inlet: … beside it")
+    if duty.hot.stream and duty.hot.stream == duty.cold.stream:
+        _refuse(reader, duty.cold.place, "one stream stands on both sides", "two streams")
+    if "shells" in fields and duty.arrangement and duty.arrangement != "shell and tube":
+        _refuse(
+            reader,
+            duty.place,
+            f"`shells` has no meaning for {duty.arrangement}",
+            "arrangement: shell and tube",
+        )
+    if "parts" in fields and duty.arrangement and duty.arrangement not in CUT_ARRANGEMENTS:
+        _refuse(
+            reader,
+            duty.place,
+            f"{duty.arrangement} cannot be cut into parts that follow each other",
+            " or ".join(CUT_ARRANGEMENTS),
+        )
+
+
+def _refuse(reader: Reader, place: Place, message: str, expected: str) -> None:
+    reader.collector.add("duty-unreadable", place, message, expected=expected)

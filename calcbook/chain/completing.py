@@ -1,0 +1,114 @@
+"""Figures that the file leaves open: found so that the step which gives them agrees with what was put in.
+
+An outlet temperature that is not stated moves the properties, the films and so the heat that leads to it. Each
+sample is repeated until what comes out is what went in, with the last two passes joined by a straight line;
+it stops at its own answer, whatever its neighbours do.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import Any
+
+import numpy as np
+
+from calcbook.chain.solve import closed
+from calcbook.chain.types import Candidate, Chain
+from calcbook.library.operations import run
+
+Array = np.ndarray
+MAXIMUM_PASSES = 60
+# What comes out and what went in, relative: some hundred roundings of a figure.
+AGREEMENT = 1e-13
+# The first value lies that far from the near end to the far end.
+FIRST_PART = 0.3
+
+
+def completed(
+    chain: Chain, inputs: Mapping[str, Array], forced: Mapping[str, Candidate] | None = None
+) -> dict[str, Array]:
+    """The inputs with every open figure, each in the condition that it belongs to; NaN where none agrees."""
+    missing = [item for item in chain.open_figures if item.id not in inputs]
+    if not missing:
+        return dict(inputs)
+    shape = np.broadcast_shapes(*(np.shape(value) for value in inputs.values()))
+    flat = {
+        name: np.asarray(value, dtype=float)
+        if np.ndim(value) == 0
+        else np.broadcast_to(value, shape).reshape(-1)
+        for name, value in inputs.items()
+    }
+    found = _Passes(chain, flat, int(np.prod(shape, dtype=int)), forced or {}).found()
+    return {**inputs, **{name: value.reshape(shape) for name, value in found.items()}}
+
+
+class _Passes:
+    """The open figures of some samples on their way."""
+
+    def __init__(self, chain: Chain, inputs: Mapping[str, Array], size: int, forced: Mapping[str, Candidate]):
+        self.chain = chain
+        self.inputs = inputs
+        self.size = size
+        self.forced = forced
+        self.open = tuple(item for item in chain.open_figures if item.id not in inputs)
+        self.static = frozenset(step.id for step in chain.steps)
+
+    def found(self) -> dict[str, Array]:
+        """The figures by id, one row of samples each."""
+        put_in = self._first()
+        result = np.full_like(put_in, np.nan)
+        before: tuple[Array, Array] | None = None
+        active = np.arange(self.size)
+        for _ in range(MAXIMUM_PASSES):
+            came_out = self._came_out(put_in, active)
+            gap = came_out - put_in
+            agreed = (np.abs(gap) <= AGREEMENT * np.abs(came_out)).all(axis=0)
+            result[:, active[agreed]] = came_out[:, agreed]
+            open_still = ~agreed & np.isfinite(gap).all(axis=0)
+            following = _joined(came_out, gap, before)
+            before = (came_out[:, open_still], gap[:, open_still])
+            put_in, active = following[:, open_still], active[open_still]
+            if not len(active):
+                break
+        return {item.id: result[place] for place, item in enumerate(self.open)}
+
+    def _first(self) -> Array:
+        values: dict[str, Any] = {**self.chain.constants, **self.inputs}
+        values |= {item.id: np.asarray(np.nan) for item in self.open}
+        with np.errstate(all="ignore"):
+            run(self.chain.steps, values)
+        rows = []
+        for item in self.open:
+            near, far = (np.asarray(values[name], dtype=float) for name in (item.near, item.far))
+            rows.append(np.broadcast_to(near + FIRST_PART * (far - near), (self.size,)))
+        return np.array(rows)
+
+    def _came_out(self, put_in: Array, active: Array) -> Array:
+        inputs = {name: value[active] if value.ndim else value for name, value in self.inputs.items()}
+        inputs |= {item.id: put_in[place] for place, item in enumerate(self.open)}
+        given: dict[str, Array] = {}
+        for condition in dict.fromkeys(item.condition for item in self.open):
+            wanted = tuple(item.found for item in self.open if item.condition == condition)
+            if self.static.issuperset(wanted):
+                values: dict[str, Any] = {**self.chain.constants, **inputs}
+                with np.errstate(all="ignore"):
+                    run(self.chain.steps, values)
+            else:
+                values = closed(self.chain, inputs, condition, self.forced, wanted).values
+            given |= {name: values[name] for name in wanted}
+        count = (len(active),)
+        return np.array(
+            [np.broadcast_to(np.asarray(given[item.found], dtype=float), count) for item in self.open]
+        )
+
+
+def _joined(came_out: Array, gap: Array, before: tuple[Array, Array] | None) -> Array:
+    """What to put in next: where the gap would close on the straight line through the last two passes."""
+    if before is None:
+        return came_out
+    last, last_gap = before
+    change = gap - last_gap
+    square = (change * change).sum(axis=0)
+    with np.errstate(all="ignore"):
+        part = np.where(square > 0.0, (change * gap).sum(axis=0) / square, 0.0)
+    return came_out - part * (came_out - last)

@@ -1,0 +1,112 @@
+"""What the rating of a unit holds: ledger, day one, parts. Frozen, nothing computes."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+if TYPE_CHECKING:
+    from calcbook.chain.outcome import CheckResult
+
+
+@dataclass(frozen=True, slots=True)
+class LedgerRow:
+    """One entry of the margin ledger: a part of the installed area in m², and what it rests on.
+
+    ``is_margin`` tells what is there beyond the duty at clean U.
+    """
+
+    name: str
+    area: float
+    basis: str
+    is_margin: bool
+
+
+@dataclass(frozen=True, slots=True)
+class PartRow:
+    """One of several equal parts of the duty along the unit, with its own U in service and clean."""
+
+    number: int
+    hot: tuple[float, float]
+    cold: tuple[float, float]
+    difference: float
+    overall: Mapping[str, float]
+    area: Mapping[str, float]
+
+
+@dataclass(frozen=True, slots=True)
+class Parts:
+    """The unit in equal parts of the duty: each with its figures, and the summed area by condition."""
+
+    rows: tuple[PartRow, ...]
+    area: Mapping[str, float]
+    spread: float
+
+
+@dataclass(frozen=True, slots=True)
+class SideState:
+    """One side of the unit in one state: flow, outlet, speed (NaN where not known), wetted surface."""
+
+    mass_flow: float
+    outlet: float
+    speed: float
+    surface: float
+
+
+@dataclass(frozen=True, slots=True)
+class UnitState:
+    """The unit in one state: its heat flow, U, and both sides by name."""
+
+    heat: float
+    overall: float
+    sides: Mapping[str, SideState]
+
+
+@dataclass(frozen=True, slots=True)
+class DayOne:
+    """The clean unit at the inlets of the duty: as it runs, and turned down until it gives the duty.
+
+    ``service`` is the unit with its allowances. ``turned_down`` is None with the reason in ``no_turn_down``.
+    ``checks`` are phases at the wall and figures outside their bands, in the state that ``condition`` names.
+    """
+
+    service: UnitState
+    clean: UnitState
+    turned_down: UnitState | None
+    no_turn_down: str
+    checks: tuple[CheckResult, ...]
+
+    @property
+    def hotter(self) -> float:
+        """How much hotter the surface on the cold side is clean than in service, K."""
+        return self.clean.sides["cold"].surface - self.service.sides["cold"].surface
+
+    @property
+    def flow_part(self) -> float:
+        """The turned-down cold flow over that of service; NaN where there is none."""
+        if self.turned_down is None:
+            return float("nan")
+        return self.turned_down.sides["cold"].mass_flow / self.service.sides["cold"].mass_flow
+
+    @property
+    def turned_down_hotter(self) -> float:
+        """As ``hotter``, for the unit turned down."""
+        if self.turned_down is None:
+            return float("nan")
+        return self.turned_down.sides["cold"].surface - self.service.sides["cold"].surface
+
+    @property
+    def is_slow(self) -> bool:
+        """Whether a speed of the unit turned down lies outside its usual window."""
+        return any(check.condition == "turned down" and check.unit == "m/s" for check in self.checks)
+
+
+@dataclass(frozen=True, slots=True)
+class Rating:
+    """Everything that the rating of the base case adds to a solved calculation."""
+
+    ledger: tuple[LedgerRow, ...]
+    ledger_sum: float
+    parts: Parts | None
+    day_one: DayOne | None

@@ -1,0 +1,177 @@
+"""Day one: the clean unit at the inlets of the duty, as it runs and turned down until it gives the duty.
+
+The outlets are then open, so the calculation is built anew without them and without stated means.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from dataclasses import replace
+
+import numpy as np
+
+from calcbook.calcfile import Calculation
+from calcbook.chain.build import build
+from calcbook.chain.completing import completed
+from calcbook.chain.findings import wall_checks
+from calcbook.chain.outcome import CheckResult, Solved
+from calcbook.chain.plausible import band_checks
+from calcbook.chain.rating_outcome import DayOne, SideState, UnitState
+from calcbook.chain.solve import Solution, solve
+from calcbook.chain.types import CLEAN, SERVICE, Branch, Chain, Group
+from calcbook.chain.variants import with_figures
+from calcbook.faults import Collector
+
+Array = np.ndarray
+# The flow is looked for down to this part of the stated one.
+SMALLEST_PART = 0.02
+POINTS = 41
+ROUNDS = 6
+
+
+def day_one(solved: Solved) -> DayOne | None:
+    """The clean unit at the duty's inlets; None where a flow is missing that it takes, or nothing fouls."""
+    calculation = solved.chain.calculation
+    assert calculation.duty is not None
+    if not any(row.kind == "fouling" for row in solved.base.terms[SERVICE]):
+        return None
+    chain = _open_chain(calculation, solved.chain)
+    if chain is None:
+        return None
+    inputs = chain.case_inputs("")
+    clean_chain = replace(
+        chain, open_figures=tuple(replace(item, condition=CLEAN) for item in chain.open_figures)
+    )
+    states = {SERVICE: (chain, SERVICE), CLEAN: (clean_chain, CLEAN)}
+    solutions = {name: _solution(one, inputs, condition) for name, (one, condition) in states.items()}
+    if any(solution is None for solution in solutions.values()):
+        return None
+    clean = solutions[CLEAN]
+    assert clean is not None and solutions[SERVICE] is not None
+    turned_down, reason, checks = _turned_down(solved)
+    every = [*_checks(clean_chain, clean, "clean"), *checks]
+    service_state = _state(chain, solutions[SERVICE])
+    clean_state = _state(clean_chain, clean)
+    return DayOne(
+        service_state,
+        clean_state,
+        turned_down,
+        reason,
+        tuple(every),
+    )
+
+
+def _open_chain(calculation: Calculation, before: Chain) -> Chain | None:
+    """The calculation with open outlets and the means of its ends; None where that cannot be built."""
+    duty = calculation.duty
+    assert duty is not None
+    streams = {
+        name: replace(stream, temperature=None)
+        if any(side.stream == name and side.inlet is not None for side in duty.sides.values())
+        else stream
+        for name, stream in calculation.streams.items()
+    }
+    opened = replace(duty, hot=replace(duty.hot, outlet=None), cold=replace(duty.cold, outlet=None), parts=1)
+    collector = Collector()
+    chain = build(replace(calculation, duty=opened, streams=streams), before.library, collector)
+    return chain if chain is not None and not collector and chain.open_figures else None
+
+
+def _solution(chain: Chain, inputs: Mapping[str, Array], condition: str) -> Solution | None:
+    solution = solve(chain, inputs, condition)
+    return solution if bool(np.all(solution.converged)) else None
+
+
+# --- turned down --------------------------------------------------------------------------------------
+
+
+def _turned_down(solved: Solved) -> tuple[UnitState | None, str, list[CheckResult]]:
+    """The clean unit with its cold flow turned down until it gives the duty; or why there is none.
+
+    The hot ends stay as stated and the cold outlet follows the flow; the flow is found where the margin of
+    area is nothing, by cutting ever smaller pieces of a range, all points of a round in one call.
+    """
+    chain, table = solved.chain, solved.chain.results
+    duty = chain.calculation.duty
+    assert duty is not None
+    flow = chain.streams[duty.cold.stream].mass_flow
+    if "C cold" not in table or not flow:
+        return None, "the cold stream has no mass flow that could be turned down", []
+    if duty.hot.outlet is None and duty.hot.inlet is not None:
+        return None, "the outlet of the hot stream is not stated", []
+    opened = _with_open_cold_outlet(solved)
+    if opened is None:
+        return None, "the duty does not follow from the hot stream alone", []
+    stated = solved.base.solutions[SERVICE].number(flow)
+    low, high = SMALLEST_PART * stated, stated
+    inputs = opened.case_inputs("")
+    margin = _margins(opened, inputs, flow, np.array([high]))
+    if not margin[0] > 0.0:
+        return None, "the clean unit does not carry the duty with any flow to spare", []
+    for _ in range(ROUNDS):
+        points = np.linspace(low, high, POINTS)
+        below = np.flatnonzero(~(_margins(opened, inputs, flow, points) > 0.0))
+        if not len(below):
+            return None, f"the clean unit carries the duty at {SMALLEST_PART:.0%} of the cold flow still", []
+        low, high = points[below[-1]], points[below[-1] + 1]
+    one, given = with_figures(opened, inputs, {flow: np.asarray(high)})
+    given = completed(one, given)
+    solution = solve(one, given, CLEAN)
+    return _state(one, solution), "", _checks(one, solution, "turned down")
+
+
+def _with_open_cold_outlet(solved: Solved) -> Chain | None:
+    calculation = solved.chain.calculation
+    duty = calculation.duty
+    assert duty is not None
+    cold = calculation.streams[duty.cold.stream]
+    streams = {**calculation.streams, duty.cold.stream: replace(cold, temperature=None)}
+    opened = replace(duty, cold=replace(duty.cold, outlet=None), parts=1)
+    collector = Collector()
+    chain = build(replace(calculation, duty=opened, streams=streams), solved.chain.library, collector)
+    return chain if chain is not None and not collector and "duty" in chain.results else None
+
+
+def _margins(chain: Chain, inputs: Mapping[str, Array], flow: str, flows: Array) -> Array:
+    """Margin of area of the clean unit over the duty at several cold flows; NaN where the duty cannot be had."""
+    one, given = with_figures(chain, inputs, {flow: flows})
+    solution = solve(one, given, CLEAN, keep=(one.results["area margin"],))
+    return np.broadcast_to(np.asarray(solution.values[one.results["area margin"]], dtype=float), flows.shape)
+
+
+# --- states ---------------------------------------------------------------------------------------------
+
+
+def _state(chain: Chain, solution: Solution | None) -> UnitState:
+    assert solution is not None and chain.calculation.duty is not None
+    heat = chain.results.get("duty", chain.results.get("heat reached", ""))
+    sides = {}
+    for name, side in chain.calculation.duty.sides.items():
+        group, branch = _film_of(chain, side.stream)
+        stream = chain.streams[side.stream]
+        speed = stream.flow if stream.flow_kind == "speed" else f"{branch.name}/speed"
+        sides[name] = SideState(
+            solution.number(stream.mass_flow) if stream.mass_flow else math.nan,
+            solution.number(chain.results[f"T {name} outlet"]),
+            solution.number(speed) if speed in solution.values else math.nan,
+            solution.number(group.surface_temperature),
+        )
+    return UnitState(solution.number(heat), solution.number(chain.results["U"]), sides)
+
+
+def _film_of(chain: Chain, stream: str) -> tuple[Group, Branch]:
+    """The film that touches a stream of the duty; the layout saw to it that there is one."""
+    return next(
+        (group, branch)
+        for group in (chain.inner, chain.outer)
+        for branch in group.branches
+        if branch.stream == stream
+    )
+
+
+def _checks(chain: Chain, solution: Solution, state: str) -> list[CheckResult]:
+    """Phases at the wall, and figures outside their plausible bands, in one state of the clean unit."""
+    found = [check for check in wall_checks(chain, "", solution) if check.state != "within"]
+    found += band_checks(chain, "", solution)
+    return [replace(check, condition=state) for check in found]

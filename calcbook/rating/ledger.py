@@ -1,0 +1,65 @@
+"""The margin ledger: the area of all tubes, split in m² into the duty at clean U and everything beyond it.
+
+The area that a resistance asks for is Q/(F·ΔT_lm)·R, so that the parts of terms in series add up exactly.
+"""
+
+from __future__ import annotations
+
+from calcbook.calcfile.calculation import Value
+from calcbook.chain.outcome import Solved
+from calcbook.chain.rating_outcome import LedgerRow
+from calcbook.chain.types import CLEAN, SERVICE
+
+# Below this part of the installed area a difference of two solved resistances is rounding.
+NOTHING = 1e-9
+
+
+def ledger(solved: Solved) -> tuple[LedgerRow, ...]:
+    """The entries of the ledger, from the duty at clean U to what is left; they add up to the area of all tubes."""
+    chain, base = solved.chain, solved.base
+    service = base.solutions[SERVICE]
+    installed = service.number(chain.results["area installed"])
+    required = {
+        condition: base.solutions[condition].number(chain.results["area required"])
+        for condition in (CLEAN, SERVICE)
+    }
+    # m² for each m² K/W on the basis area
+    per_resistance = required[SERVICE] * service.number(chain.results["U"])
+    rows = [LedgerRow("duty at clean U", required[CLEAN], "A_req clean", False)]
+    moved = 0.0
+    for row, other in zip(base.terms[SERVICE], base.terms[CLEAN], strict=True):
+        if row.kind == "fouling":
+            rows.append(LedgerRow(row.name, per_resistance * row.resistance, "its allowance", True))
+        else:
+            moved += row.resistance - other.resistance
+    if abs(per_resistance * moved) > NOTHING * installed:
+        rows.append(
+            LedgerRow(
+                "films and walls at the fouled surface",
+                per_resistance * moved,
+                "their resistance in service less that clean",
+                True,
+            )
+        )
+    left = installed - required[SERVICE]
+    rows.append(LedgerRow("left over the duty in service, rounding included", left, "A_inst − A_req", True))
+    plugged = _plugged_area(solved, installed)
+    if plugged:
+        rows.append(LedgerRow("plugged tubes", plugged, "beside the installed area", True))
+    return tuple(rows)
+
+
+def _plugged_area(solved: Solved, installed: float) -> float:
+    """The area of plugged tubes, which stands beside the installed one; 0 where none is stated."""
+    geometry = solved.chain.calculation.geometry
+    plugged, tubes = (geometry.dimensions.get(key) if geometry else None for key in ("plugged", "tubes"))
+    if plugged is None or tubes is None:
+        return 0.0
+    closed, every = (_figure(solved, value, key) for value, key in ((plugged, "plugged"), (tubes, "tubes")))
+    return installed * closed / (every - closed)
+
+
+def _figure(solved: Solved, value: Value, key: str) -> float:
+    solution = solved.base.solutions[SERVICE]
+    names = (f"given/{value.symbol}", f"derived/{value.symbol}") if value.symbol else (f"geometry/{key}",)
+    return next(solution.number(name) for name in names if name in solution.values)

@@ -1,0 +1,85 @@
+"""The unit in equal parts of the duty along its length: every part with its own properties, U and area."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+
+import numpy as np
+
+from calcbook.chain.outcome import Solved
+from calcbook.chain.rating_outcome import PartRow, Parts
+from calcbook.chain.solve import Solution, solve
+from calcbook.chain.types import CONDITIONS, SERVICE
+from calcbook.chain.variants import with_figures
+
+Array = np.ndarray
+
+
+def parts(solved: Solved) -> Parts | None:
+    """The parts that the file asks for, all in one call; None where it asks for one.
+
+    Every part carries the same heat, so that both streams change their temperature by equal steps.
+    """
+    duty, base = solved.chain.calculation.duty, solved.base.solutions[SERVICE]
+    if duty is None or duty.parts == 1:
+        return None
+    ends = {name: _ends(solved, name, duty.parts) for name in duty.sides}
+    heat = solved.chain.results["duty"]
+    figures = {heat: np.full(duty.parts, base.number(heat) / duty.parts)}
+    for name, (inlets, outlets) in ends.items():
+        figures |= _side(solved, name, inlets, outlets)
+    inputs = {name: np.asarray(value) for name, value in solved.base.inputs.items()}
+    chain, given = with_figures(solved.chain, inputs, figures)
+    solutions = {condition: solve(chain, given, condition) for condition in CONDITIONS}
+    return _laid_out(solved, solutions, ends, duty.parts)
+
+
+def _ends(solved: Solved, name: str, count: int) -> tuple[Array, Array]:
+    """Inlet and outlet temperatures of a side in every part, numbered from the hot inlet."""
+    number = solved.base.solutions[SERVICE].number
+    inlet, outlet = (number(solved.chain.results[f"T {name} {end}"]) for end in ("inlet", "outlet"))
+    borders = inlet + (outlet - inlet) * np.linspace(0.0, 1.0, count + 1)
+    duty = solved.chain.calculation.duty
+    if name == "cold" and duty is not None and duty.arrangement == "counterflow":
+        return borders[:-1][::-1], borders[1:][::-1]
+    return borders[:-1], borders[1:]
+
+
+def _side(solved: Solved, name: str, inlets: Array, outlets: Array) -> dict[str, Array]:
+    """The figures of a side in the parts: its ends, and its bulk where the file states that apart."""
+    table, duty = solved.chain.results, solved.chain.calculation.duty
+    assert duty is not None
+    if f"T {name} mean" not in table:
+        return {}
+    figures = {table[f"T {name} inlet"]: inlets, table[f"T {name} outlet"]: outlets}
+    bulk = solved.chain.streams[duty.sides[name].stream].temperature
+    return figures if bulk == table[f"T {name} mean"] else {**figures, bulk: (inlets + outlets) / 2.0}
+
+
+def _laid_out(
+    solved: Solved, solutions: Mapping[str, Solution], ends: Mapping[str, tuple[Array, Array]], count: int
+) -> Parts:
+    table = solved.chain.results
+
+    def every(condition: str, name: str) -> Array:
+        return np.broadcast_to(np.asarray(solutions[condition].values[table[name]], dtype=float), (count,))
+
+    def pair(name: str, place: int) -> tuple[float, float]:
+        inlets, outlets = ends[name]
+        return float(inlets[place]), float(outlets[place])
+
+    overall = {condition: every(condition, "U") for condition in CONDITIONS}
+    area = {condition: every(condition, "area required") for condition in CONDITIONS}
+    rows = tuple(
+        PartRow(
+            place + 1,
+            pair("hot", place),
+            pair("cold", place),
+            float(every(SERVICE, "LMTD")[place]),
+            {condition: float(overall[condition][place]) for condition in CONDITIONS},
+            {condition: float(area[condition][place]) for condition in CONDITIONS},
+        )
+        for place in range(count)
+    )
+    spread = float(overall[SERVICE].max() / overall[SERVICE].min() - 1.0)
+    return Parts(rows, {condition: float(area[condition].sum()) for condition in CONDITIONS}, spread)

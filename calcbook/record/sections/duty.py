@@ -1,0 +1,327 @@
+"""The duty in the record: two ways to it, margin ledger, largest allowances, parts, day one."""
+
+from __future__ import annotations
+
+import math
+
+from calcbook.chain.allowance import fouling_figures
+from calcbook.chain.rating_outcome import DayOne, Parts, Rating, UnitState
+from calcbook.chain.types import Layer
+from calcbook.library import vocabulary
+from calcbook.quantities import in_unit
+from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Table
+from calcbook.record.numbers import (
+    CONCLUSION_DIGITS,
+    NOT_KNOWN,
+    PLAIN_DIGITS,
+    fixed,
+    in_report_unit,
+    number,
+    percent,
+    report_unit,
+    unit_text,
+)
+from calcbook.record.page import Page
+from calcbook.record.sections.validity import verdict
+
+# A surface this much hotter than in service is told, K: common practice.
+HOTTER = 2.0
+
+
+def brief_rows(page: Page) -> list[tuple[str, str, str]]:
+    """The conclusion of the duty: heat, areas, and both margins with their formulas."""
+    rows = []
+    for name, title, basis in (
+        ("duty", "Duty", _duty_basis(page)),
+        ("area_installed", "Installed area", f"on the surface {page.basis}"),
+        ("area_service", "Area that the duty needs in service", "Q/(U_service·ΔT_mean)"),
+        ("area_clean", "Area that the duty needs clean", "Q/(U_clean·ΔT_mean)"),
+        (
+            "heat_reached_service",
+            "Heat that the installed area reaches in service",
+            "effectiveness, from the same inlets",
+        ),
+    ):
+        result = page.result(name)
+        if result is not None:
+            rows.append(
+                (
+                    title,
+                    in_report_unit(result.value, result.kind, page.calculation.report, PLAIN_DIGITS),
+                    basis,
+                )
+            )
+    margin = page.result("area_margin")
+    if margin is not None:
+        rows.append(("Margin of area over the duty", percent(margin.value), "A_installed/A_service − 1"))
+    return rows
+
+
+def _duty_basis(page: Page) -> str:
+    closure = page.result("closure")
+    if closure is None:
+        return "heat balance of one stream"
+    return f"mean of both heat balances, which differ by {percent(closure.value, 2)}"
+
+
+# --- section 7 --------------------------------------------------------------------------------------
+
+
+def area_blocks(page: Page) -> list[Block]:
+    """Margin ledger, largest allowances and parts, where a duty is stated."""
+    rating = page.solved.rating
+    if rating is None:
+        return []
+    return [
+        *_ledger(page, rating),
+        *_allowances(page),
+        *(_parts(page, rating.parts) if rating.parts else []),
+    ]
+
+
+def _ledger(page: Page, rating: Rating) -> list[Block]:
+    unit = report_unit(vocabulary()["area"], page.calculation.report)
+    rows = [
+        (row.name, _area(page, row.area), percent(row.area / rating.ledger_sum), row.basis)
+        for row in rating.ledger
+    ]
+    rows.append(("sum", _area(page, rating.ledger_sum), "100.0 %", "area of all tubes, or of the wall"))
+    stacked = [row for row in rating.ledger if row.is_margin and row.area > 0.0]
+    words = (
+        "The area of a resistance is Q/ΔT_mean times that resistance on the basis area, so that the entries add"
+        " up. Each margin stands on its own line; they are stacked, and none of them is a reserve for another."
+    )
+    blocks: list[Block] = [
+        Heading(3, "Margin ledger"),
+        Paragraph(words),
+        Table(("Part of the area", f"Area, {unit_text(unit)}", "Share", "Rests on"), tuple(rows)),
+    ]
+    if stacked:
+        total = sum(row.area for row in stacked)
+        needed = rating.ledger[0].area
+        blocks.append(
+            Paragraph(
+                f"Stacked margins: {', '.join(row.name for row in stacked)}; together {percent(total / needed)} of the"
+                " area that the duty needs clean."
+            )
+        )
+    return blocks
+
+
+def _area(page: Page, value: float) -> str:
+    return _plain(page, value, "area", PLAIN_DIGITS)
+
+
+def _plain(page: Page, value: float, kind: str, digits: int) -> str:
+    """A figure in the unit of the report without that unit, which stands in the head of its column."""
+    if not math.isfinite(value):
+        return NOT_KNOWN
+    unit = report_unit(vocabulary()[kind], page.calculation.report)
+    return number(in_unit(value, unit), digits)
+
+
+def _allowances(page: Page) -> list[Block]:
+    rows = tuple(
+        _allowance_row(page, figure, layers) for figure, layers in fouling_figures(page.chain).items()
+    )
+    if not rows:
+        return []
+    unit = unit_text(report_unit(vocabulary()["area resistance"], page.calculation.report))
+    return [
+        Heading(3, "Largest allowances"),
+        Paragraph(
+            "The largest resistance of one fouling figure, on its own surface, with which the installed area still"
+            " carries the duty; the others stay as stated."
+        ),
+        Table(("Fouling term", "On", f"Stated, {unit}", f"Largest, {unit}"), rows),
+    ]
+
+
+def _allowance_row(page: Page, figure: str, layers: tuple[Layer, ...]) -> tuple[str, ...]:
+    name = ", ".join(layer.name for layer in layers)
+    surfaces = dict.fromkeys(page.chain.surfaces[layer.surface].name for layer in layers)
+    stated = page.base.solutions["service"].number(figure)
+    largest = page.result(f"largest_allowance {name}")
+    return (
+        name,
+        ", ".join(surfaces),
+        _plain(page, stated, "area resistance", PLAIN_DIGITS),
+        _plain(page, largest.value, "area resistance", PLAIN_DIGITS)
+        if largest is not None
+        else "none: the duty is not carried even without it",
+    )
+
+
+def _parts(page: Page, parts: Parts) -> list[Block]:
+    area = unit_text(report_unit(vocabulary()["area"], page.calculation.report))
+    overall = unit_text(report_unit(vocabulary()["overall coefficient"], page.calculation.report))
+    rows = [
+        (
+            str(row.number),
+            _ends(page, row.hot),
+            _ends(page, row.cold),
+            fixed(row.difference, 2),
+            *(
+                text
+                for condition in ("service", "clean")
+                for text in (
+                    _plain(page, row.overall[condition], "overall coefficient", CONCLUSION_DIGITS),
+                    _plain(page, row.area[condition], "area", PLAIN_DIGITS),
+                )
+            ),
+        )
+        for row in parts.rows
+    ]
+    rows.append(
+        ("sum", "", "", "", "", _area(page, parts.area["service"]), "", _area(page, parts.area["clean"]))
+    )
+    single = page.base.results["area_service"].value
+    return [
+        Heading(3, "Parts of the unit"),
+        Paragraph(
+            f"Equal parts of the duty, numbered from the hot inlet, each with the properties at its own means. U in"
+            f" service differs by {percent(parts.spread)} over them; the summed area in service is"
+            f" {percent(parts.area['service'] / single - 1.0, 2)} off that from one mean state."
+        ),
+        Table(
+            (
+                "Part",
+                "Hot, in to out",
+                "Cold, in to out",
+                "ΔT_lm, K",
+                f"U service, {overall}",
+                f"A service, {area}",
+                f"U clean, {overall}",
+                f"A clean, {area}",
+            ),
+            tuple(rows),
+        ),
+    ]
+
+
+def _ends(page: Page, pair: tuple[float, float]) -> str:
+    kind = vocabulary()["temperature"]
+    return " to ".join(in_report_unit(value, kind, page.calculation.report, PLAIN_DIGITS) for value in pair)
+
+
+# --- section 10 -------------------------------------------------------------------------------------
+
+
+def two_ways(page: Page) -> list[Block]:
+    """The duty by the mean temperature difference and by effectiveness, beside each other."""
+    table = page.chain.results
+    if "duty by effectiveness" not in table:
+        return []
+    solution = page.base.solutions["service"]
+    duty, other = (solution.number(table[name]) for name in ("duty", "duty by effectiveness"))
+    kind, report = vocabulary()["heat flow"], page.calculation.report
+    return [
+        Heading(3, "Duty by two ways"),
+        Table(
+            ("Way", "Heat flow", "Difference"),
+            (
+                (
+                    "rate equation: U that the installed area needs, mean temperature difference",
+                    in_report_unit(duty, kind, report, PLAIN_DIGITS),
+                    "",
+                ),
+                (
+                    "effectiveness at that U from the inlets and the capacity flows",
+                    in_report_unit(other, kind, report, PLAIN_DIGITS),
+                    percent(other / duty - 1.0, 3),
+                ),
+            ),
+        ),
+        Paragraph("The two agree where the heat balances close; what they differ by is their closure error."),
+    ]
+
+
+# --- section 12 -------------------------------------------------------------------------------------
+
+
+def day_one_blocks(page: Page) -> list[Block]:
+    """The clean unit at the inlets of the duty, where there is a duty and something fouls."""
+    day = page.solved.rating.day_one if page.solved.rating is not None else None
+    if day is None:
+        return []
+    states = {"with the allowances": day.service, "clean": day.clean}
+    if day.turned_down is not None:
+        states["clean, turned down to the duty"] = day.turned_down
+    blocks: list[Block] = [
+        Heading(3, "Day one"),
+        Paragraph(
+            "The unit at the inlets of the duty, its outlets found by effectiveness: with its allowances, clean,"
+            " and clean with the cold flow turned down until it gives no more than the duty."
+        ),
+        Table(("Figure", *states), tuple(_state_rows(page, list(states.values())))),
+    ]
+    if day.turned_down is None:
+        blocks.append(Paragraph(f"No turned-down state: {day.no_turn_down}."))
+    sentences = _sentences(page, day)
+    if sentences:
+        blocks.append(Bullets(sentences))
+    if day.checks:
+        rows = tuple(
+            (check.id, check.condition, check.figure, check.limit, verdict(check)) for check in day.checks
+        )
+        blocks += [
+            Paragraph("Limits and usual windows that the clean unit leaves:"),
+            Table(("Check", "State", "Figure", "Limit", "Verdict"), rows),
+        ]
+    else:
+        blocks.append(
+            Paragraph("The clean unit neither boils nor freezes at the wall and leaves no usual window.")
+        )
+    return blocks
+
+
+def _state_rows(page: Page, states: list[UnitState]) -> list[tuple[str, ...]]:
+    report, kinds = page.calculation.report, vocabulary()
+
+    def row(title: str, kind: str, values: list[float], digits: int = PLAIN_DIGITS) -> tuple[str, ...]:
+        return (title, *(in_report_unit(value, kinds[kind], report, digits) for value in values))
+
+    rows = [
+        row("heat flow", "heat flow", [state.heat for state in states]),
+        row("U", "overall coefficient", [state.overall for state in states], CONCLUSION_DIGITS),
+    ]
+    for name in ("hot", "cold"):
+        sides = [state.sides[name] for state in states]
+        rows += [
+            row(f"outlet of the {name} stream", "temperature", [side.outlet for side in sides]),
+            row(f"surface on the {name} side, at the means", "temperature", [side.surface for side in sides]),
+            row(f"flow of the {name} stream", "mass flow", [side.mass_flow for side in sides]),
+        ]
+        if any(math.isfinite(side.speed) for side in sides):
+            rows.append(row(f"speed of the {name} stream", "speed", [side.speed for side in sides]))
+    return rows
+
+
+def _sentences(page: Page, day: DayOne) -> tuple[str, ...]:
+    """What the generous area does to the clean unit, with its figures."""
+    found = []
+    difference = vocabulary()["temperature difference"]
+
+    def kelvin(value: float) -> str:
+        return in_report_unit(value, difference, page.calculation.report, CONCLUSION_DIGITS)
+
+    if day.hotter > HOTTER:
+        found.append(
+            f"The surface on the cold side is {kelvin(day.hotter)} hotter clean than with the allowances: what"
+            " deposits faster on a hot surface starts there."
+        )
+    if day.turned_down is not None:
+        found.append(
+            f"To give no more than the duty the clean unit runs at {percent(day.flow_part)} of the cold flow; the"
+            f" surface on the cold side then stands {kelvin(day.turned_down_hotter)} above that with the allowances."
+        )
+        if day.is_slow:
+            found.append(
+                "At that flow a speed lies outside its usual window: the allowance breeds its own fouling."
+            )
+        elif day.turned_down_hotter > HOTTER:
+            found.append(
+                "Less flow and a hotter surface both favour deposits on the cold side: the allowance may breed its own"
+                " fouling."
+            )
+    return tuple(found)
