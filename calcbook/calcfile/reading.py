@@ -597,13 +597,19 @@ class Reader:
         return Stream(
             key.text,
             self.fluid(fields.node("fluid")),
-            self.value(fields.node("temperature")),
+            self.stream_temperature(fields, node),
             self.value(fields.node("pressure")),
             self.value(fields.node("flow"), described.FLOW),
             fields.text("phase"),
             key.place,
             self.non_condensable(fields.node("non-condensable")),
         )
+
+    def stream_temperature(self, fields: Fields, node: Node) -> Value | None:
+        """The temperature of a stream; a key without a value has its fault already and is not called missing."""
+        keys = node.entries if isinstance(node, MappingNode) else ()
+        empty = next((key for key, _ in keys if key.text == "temperature" and key.text not in fields), None)
+        return Value("", empty.place, is_broken=True) if empty else self.value(fields.node("temperature"))
 
     def check_stream_temperatures(self, streams: Mapping[str, Stream], duty: Duty | None) -> None:
         """A stream without a temperature takes the mean of its ends: it must stand in the duty with an inlet."""
