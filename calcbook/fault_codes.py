@@ -37,6 +37,7 @@ CODES: dict[str, str] = {
     "symbol-not-allowed": "a symbol is a letter followed by letters, digits or _, and no function or constant",
     "symbol-twice": "one symbol for two quantities",
     "verification-incomplete": "a verified assumption says by whom, when and on what evidence",
+    "split-unreadable": "shares of a specified fouling that do not cover its terms once and make 100 %",
     "duty-unreadable": "keys of the duty that do not go together, or that its arrangement has no use for",
     "duty-incomplete": "the heat of the duty does not follow from what is stated: flows and ends of its streams",
     "count-unreadable": "a whole number within its bounds is wanted",

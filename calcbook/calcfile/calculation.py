@@ -159,6 +159,16 @@ class Duty:
 
 
 @dataclass(frozen=True, slots=True)
+class FoulingSpecified:
+    """Fouling of the whole unit by ``kind`` (cleanliness or excess surface), split over its terms by name."""
+
+    kind: str
+    value: Value
+    split: Mapping[str, Value]
+    place: Place
+
+
+@dataclass(frozen=True, slots=True)
 class Geometry:
     """Shape and the dimensions that stand in the file, by their key."""
 
@@ -308,3 +318,4 @@ class Calculation:
 
     broken: frozenset[str] = frozenset()
     duty: Duty | None = None
+    fouling_specified: FoulingSpecified | None = None

@@ -256,6 +256,20 @@ DEPOSIT = Description(
         Key("narrows", "whether it narrows the bore", "flag"),
     ),
 )
+FOULING_SPECIFIED = Description(
+    "a specified fouling",
+    "fouling of the whole unit, for the fouling terms that state no resistance",
+    (
+        Key("cleanliness", "U in service over U clean", "node", of=SOURCED, quantity="ratio"),
+        Key("excess surface", "U clean over U in service, less one", "node", of=SOURCED, quantity="ratio"),
+        Key(
+            "split",
+            "share of every open fouling term",
+            "mapping",
+            of=Description("a split", "", free=Key("<term>", "share of a fouling term", "node", of=SOURCED)),
+        ),
+    ),
+)
 FINS = Description(
     "fins",
     "fins on the surface that a film acts on",
@@ -313,7 +327,6 @@ TERM = Description(
         Key("holds for", "range in which a stated value holds: {symbol: low .. high}", "mapping"),
         Key("scales with", "factor on a stated value, as a relation", "relation"),
         Key("growth", "fouling growth", "node", later=True),
-        Key("fouling specified as", "fouling of the whole unit", "node", later=True),
         Key("fins", "fins on the surface that the film acts on", "mapping", of=FINS),
         Key(
             "vapour velocity", "speed of a condensing vapour", "node", of=SOURCED, quantity="vapour velocity"
@@ -447,6 +460,12 @@ FILE = Description(
         ),
         Key("accept", "answers to failed checks", "list", of=ACCEPT),
         Key("duty", "duty of the unit", "mapping", of=DUTY),
+        Key(
+            "fouling specified as",
+            "fouling of the whole unit, split over its terms",
+            "mapping",
+            of=FOULING_SPECIFIED,
+        ),
         Key("sweep", "sweep over givens", "node", later=True),
         Key(
             "evaluate at",

@@ -33,6 +33,7 @@ from calcbook.calcfile.calculation import (
 from calcbook.calcfile.duty import read_duty
 from calcbook.calcfile.links import LinkText, Resolve
 from calcbook.calcfile.meaning import meaning_of
+from calcbook.calcfile.specified import read_specified
 from calcbook.calcfile.tablefile import read_table_file
 from calcbook.documents import Description, Document, Fields, Node, Scalar, Sequence, read_file, read_mapping
 from calcbook.documents import Mapping as MappingNode
@@ -51,7 +52,9 @@ from calcbook.quantities import (
 NUMBER = re.compile(r"[A-Za-z0-9][A-Za-z0-9_.-]{0,39}")
 SYMBOL = re.compile(r"[A-Za-z][A-Za-z0-9_]{0,39}")
 # What other ids of the chain start with: a term of that name would be taken for them.
-CLASHING_NAMES = frozenset(["given", "derived", "geometry", "circuit", "solution", "book"])
+CLASHING_NAMES = frozenset(
+    ["given", "derived", "geometry", "circuit", "solution", "book", "duty", "fouling", "factor"]
+)
 CLASHING_STARTS = ("stream ", "case ", "fluid ", "assumption ", "word ", "unread ")
 AT_PLACE = "at "
 # Beyond these sizes (SI) a figure is a slip of the keyboard; working with it only breaks the arithmetic.
@@ -164,6 +167,7 @@ class Reader:
         terms = self.terms(self.fields.node("resistances"))
         cases = self.cases(givens)
         duty = read_duty(self)
+        specified = read_specified(self, terms)
         streams = {key.text: self.stream(key, value) for key, value in self.entries("streams")}
         self.check_stream_temperatures(streams, duty)
         return Calculation(
@@ -191,6 +195,7 @@ class Reader:
             place=self.place,
             broken=frozenset(self.broken),
             duty=duty,
+            fouling_specified=specified,
         )
 
     def meaning(self) -> object:

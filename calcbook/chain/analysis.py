@@ -52,6 +52,7 @@ from calcbook.chain.pressure import (
 )
 from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.solve import Solution, chosen, solve
+from calcbook.chain.specified import OWNER as SPECIFIED
 from calcbook.chain.types import (
     CLEAN,
     CONDITIONS,
@@ -215,8 +216,10 @@ class _Analysis:
     def _report_stop(self, check: CheckResult) -> None:
         term = next((term for term in self.chain.calculation.resistances if term.name == check.owner), None)
         place = term.place if term is not None else self.chain.calculation.place
-        if check.owner == DUTY and self.chain.calculation.duty is not None:
-            place = self.chain.calculation.duty.place
+        calculation = self.chain.calculation
+        for owner, part in ((DUTY, calculation.duty), (SPECIFIED, calculation.fouling_specified)):
+            if check.owner == owner and part is not None:
+                place = part.place
         self.collector.add(
             "limit-stops",
             place,

@@ -7,6 +7,7 @@ from dataclasses import replace
 from calcbook.calcfile import Calculation
 from calcbook.calcfile.calculation import Derived, Term, Value
 from calcbook.calcfile.links import CURRENT
+from calcbook.calcfile.specified import is_open
 from calcbook.chain.circuit import Circuit
 from calcbook.chain.duty import DutyLayout
 from calcbook.chain.films import FilmScope
@@ -15,6 +16,7 @@ from calcbook.chain.petroleum import lay_out_cards
 from calcbook.chain.pressure import asked_symbols, lay_out_pressure_drop
 from calcbook.chain.scope import Scope, unnamed_kind
 from calcbook.chain.services import check_services
+from calcbook.chain.specified import SpecifiedFouling
 from calcbook.chain.streams import lay_out_stream
 from calcbook.chain.surfaces import Shape, Wall, lay_out_shape
 from calcbook.chain.types import (
@@ -28,6 +30,7 @@ from calcbook.chain.types import (
     Group,
     Input,
     Layer,
+    OpenFigure,
     StreamState,
     follows_temperature,
 )
@@ -56,6 +59,12 @@ class _Builder:
         self.checks: list[ChainCheck] = []
         self.early: frozenset[str] = frozenset()
         self.finned: FinnedSide | None = None
+        self.open_figures: tuple[OpenFigure, ...] = ()
+        self.specified = (
+            SpecifiedFouling(self.scope, calculation.fouling_specified)
+            if calculation.fouling_specified is not None
+            else None
+        )
         self.duty = (
             DutyLayout(self.scope, library, calculation.duty) if calculation.duty is not None else None
         )
@@ -70,6 +79,9 @@ class _Builder:
             for name, stream in calculation.streams.items()
             if (state := lay_out_stream(scope, stream, self.library, means.get(name, ""))) is not None
         }
+        if self.specified is not None:
+            self.checks += self.specified.checks()
+            self.open_figures = self.specified.open_figures()
         has_duty = self.duty is not None and self.duty.balance(self.streams)
         self.checks += lay_out_cards(scope, self.library, self.streams)
         terms = calculation.resistances
@@ -188,7 +200,7 @@ class _Builder:
                 case: {symbol: self._restated_value(symbol, given.value) for symbol, given in changes.items()}
                 for case, changes in self.calculation.cases.items()
             },
-            open_figures=tuple(self.duty.open_figures) if self.duty is not None else (),
+            open_figures=(*self.open_figures, *(self.duty.open_figures if self.duty is not None else ())),
         )
 
     def _restated_value(self, symbol: str, value: Value) -> float:
@@ -491,6 +503,8 @@ class _Builder:
             return None
         if term.deposit is not None:
             return self._deposit(term, shape, surface)
+        if self.specified is not None and is_open(term):
+            return self._specified_layer(self.specified, term, shape, surface)
         resistance = self.scope.value(
             term.values.get("resistance"), "area resistance", term.name, "resistance"
         )
@@ -520,6 +534,17 @@ class _Builder:
                 )
             return None
         return Layer(term.name, term.kind, surface, resistance)
+
+    def _specified_layer(
+        self, specified: SpecifiedFouling, term: Term, shape: Shape, surface: int
+    ) -> Layer | None:
+        """A fouling layer that takes its share of what the file specifies for the whole unit."""
+        basis = shape.names().get(self.calculation.report.u_on)
+        if basis is None:
+            return None
+        areas = shape.surfaces
+        resistance = specified.resistance(term, areas[basis].area, areas[surface].area)
+        return Layer(term.name, term.kind, surface, resistance) if resistance else None
 
     def _wetted_surface(self, term: Term, shape: Shape) -> int | None:
         """The finned surface for the fouling that lies on it, else None."""

@@ -13,6 +13,7 @@ from dataclasses import dataclass
 
 from calcbook.chain.outcome import CaseOutcome, Solved, StepRow
 from calcbook.record.numbers import in_report_unit, report_unit, unit_text, value_text
+from calcbook.record.rating_figures import rating_figures
 
 MARK = b"calcbook-digest-1\0"
 RESULT_DIGITS = 5
@@ -78,6 +79,10 @@ def displayed(solved: Solved) -> dict[str, list[str]]:
             ]
         for criterion in case.criteria:
             shown[f"{prefix}{criterion.id}"] = ["criterion met" if criterion.met else "criterion not met", ""]
+    if solved.rating is not None:
+        for name, value, kind in rating_figures(solved.rating):
+            text = in_report_unit(value, kind, report, RESULT_DIGITS)
+            shown[f"rating / {name}"] = [text, unit_text(report_unit(kind, report))]
     return shown
 
 

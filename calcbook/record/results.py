@@ -6,10 +6,12 @@ import json
 import math
 
 from calcbook.chain.outcome import CaseOutcome, CheckResult, CriterionResult, Solved, StepRow, TermRow
+from calcbook.chain.rating_outcome import Rating
 from calcbook.chain.types import CONDITIONS, SERVICE, OpenItem
 from calcbook.formulas import Relation
 from calcbook.quantities import QuantityKind
 from calcbook.record.digest import Digest
+from calcbook.record.rating_figures import rating_figures
 from calcbook.record.software import Software
 from calcbook.record.steps import StepTexts
 
@@ -43,6 +45,7 @@ def results_data(solved: Solved, digest: Digest, software: Software) -> Data:
         },
         "results": _results(base),
         "conditions": {condition: [_term(row) for row in base.terms[condition]] for condition in CONDITIONS},
+        **({"rating": _rating(solved.rating)} if solved.rating is not None else {}),
         "steps": _steps(solved),
         "checks": [_check(check) for check in base.checks],
         "acceptance": [_criterion(item) for case in solved.cases for item in case.criteria],
@@ -72,6 +75,10 @@ def _results(case: CaseOutcome) -> Data:
         "unit": "1",
     }
     return found
+
+
+def _rating(rating: Rating) -> Data:
+    return {name: _figure(value, kind) for name, value, kind in rating_figures(rating)}
 
 
 def _term(row: TermRow) -> Data:

@@ -82,7 +82,7 @@ def test_a_good_file_fits(path: Path) -> None:
         ("mapping-expected", "/givens/d_i: string"),
         ("choice-unknown", "/geometry/shape: no choice"),
         ("list-expected", "/resistances: object"),
-        ("key-not-yet-available", "/resistances/1: unknown fouling specified as"),
+        ("key-not-yet-available", "/resistances/1: unknown growth"),
         ("value-not-text", "/calculation/title: array"),
         ("verification-incomplete", None),
     ],

@@ -277,3 +277,17 @@ def test_a_sample_does_not_depend_on_its_neighbours(tmp_path: Path) -> None:
         for film in films
     ]
     assert together.tolist() == alone
+
+
+@pytest.mark.parametrize(
+    ("way", "value", "ratio"), [("cleanliness", "80 %", 0.8), ("excess surface", "25 %", 0.8)]
+)
+def test_fouling_specified_for_the_whole_unit(tmp_path: Path, way: str, value: str, ratio: float) -> None:
+    """With stated films U_service/U_clean is the cleanliness, and 1/(1 + excess surface): identities."""
+    path = tmp_path / "rt-1.yaml"
+    text = FILE.format(**{**KREITH, "length": "900 m"}).replace(", resistance: R_f", "")
+    path.write_text(
+        f'{text}fouling specified as: {{{way}: {{value: "{value}", source: s}}}}\n', encoding="utf-8"
+    )
+    answer = solve_file(path)
+    assert figure(answer, "cleanliness") == pytest.approx(ratio, rel=1e-12)
