@@ -121,6 +121,7 @@ class DutyLayout:
                 return False
         for name in SIDES:
             self._capacity(name, states[name])
+            self._mean_check(name, states[name])
         heats = [self._heat(name) for name in SIDES if self._has_heat(name)]
         if not heats:
             return self._by_effectiveness()
@@ -178,6 +179,24 @@ class DutyLayout:
             "mass flow and heat capacity at the mean temperature",
             "conductance",
         )
+
+    def _mean_check(self, name: str, state: StreamState | None) -> None:
+        """A stated temperature of a stream beside the mean of its ends."""
+        assert state is not None
+        mean = self.results.get(f"T {name} mean", "")
+        if mean and state.temperature != mean:
+            self._check(
+                f"ends / {name} mean",
+                f"abs(T_b - T_{name[0]}m) <= abs(T_i - T_o)/4",
+                "caution",
+                "the stated mean temperature and the ends are of one state; a viscous liquid may be taken off the middle",
+                {
+                    "T_b": state.temperature,
+                    f"T_{name[0]}m": mean,
+                    "T_i": self.results[f"T {name} inlet"],
+                    "T_o": self.results[f"T {name} outlet"],
+                },
+            )
 
     def _has_heat(self, name: str) -> bool:
         """Whether the heat of a side follows from its own flow and stated ends."""
@@ -632,6 +651,14 @@ _CLEAN_RESULTS = (
         "heat that the installed area reaches clean, at the same means",
     ),
 )
+
+
+# Every result name of the duty with its condition and its key in ``Chain.results``.
+DUTY_RESULTS = {
+    name: (condition, key)
+    for condition, table in ((SERVICE, _RESULTS), (CLEAN, _CLEAN_RESULTS))
+    for name, key, _, _ in table
+}
 
 
 def duty_results(

@@ -14,6 +14,7 @@ import numpy as np
 from calcbook.calcfile import Calculation
 from calcbook.chain.build import build
 from calcbook.chain.completing import completed
+from calcbook.chain.ends import end_checks
 from calcbook.chain.findings import wall_checks
 from calcbook.chain.outcome import CheckResult, Solved
 from calcbook.chain.plausible import band_checks
@@ -50,7 +51,7 @@ def day_one(solved: Solved) -> DayOne | None:
     clean = solutions[CLEAN]
     assert clean is not None and solutions[SERVICE] is not None
     turned_down, reason, checks = _turned_down(solved)
-    every = [*_checks(clean_chain, clean, "clean"), *checks]
+    every = [*_checks(clean_chain, completed(clean_chain, inputs), clean, "clean"), *checks]
     service_state = _state(chain, solutions[SERVICE])
     clean_state = _state(clean_chain, clean)
     return DayOne(
@@ -118,7 +119,7 @@ def _turned_down(solved: Solved) -> tuple[UnitState | None, str, list[CheckResul
     one, given = with_figures(opened, inputs, {flow: np.asarray(high)})
     given = completed(one, given)
     solution = solve(one, given, CLEAN)
-    return _state(one, solution), "", _checks(one, solution, "turned down")
+    return _state(one, solution), "", _checks(one, given, solution, "turned down")
 
 
 def _with_open_cold_outlet(solved: Solved) -> Chain | None:
@@ -170,8 +171,9 @@ def _film_of(chain: Chain, stream: str) -> tuple[Group, Branch]:
     )
 
 
-def _checks(chain: Chain, solution: Solution, state: str) -> list[CheckResult]:
-    """Phases at the wall, and figures outside their plausible bands, in one state of the clean unit."""
-    found = [check for check in wall_checks(chain, "", solution) if check.state != "within"]
+def _checks(chain: Chain, inputs: Mapping[str, Array], solution: Solution, state: str) -> list[CheckResult]:
+    """Phases at the wall, at the means and at both ends, and figures outside their bands, of the clean unit."""
+    phases = [*wall_checks(chain, "", solution), *end_checks(chain, "", inputs, {CLEAN: solution})]
+    found = [check for check in phases if check.state != "within"]
     found += band_checks(chain, "", solution)
     return [replace(check, condition=state) for check in found]

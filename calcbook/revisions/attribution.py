@@ -21,13 +21,13 @@ from hashlib import sha256
 
 import numpy as np
 
+from calcbook.chain.named_results import conditions_of, is_coefficient, result_values
 from calcbook.chain.solve import Solution, solve
 from calcbook.chain.types import SERVICE, Chain
 from calcbook.properties import PropertyFault
 from calcbook.quantities import QuantityKind
 from calcbook.revisions.changes import Change
 from calcbook.revisions.mixtures import Mixer, has_sound_states, moved_inputs, with_inputs
-from calcbook.revisions.named_results import conditions_of, is_coefficient, result_values
 from calcbook.revisions.sides import Side
 
 Array = np.ndarray

@@ -29,8 +29,12 @@ givens:
   h: {{value: "{film}", is: both films, source: s}}
   R_f: {{value: "{fouling}", is: allowance, source: s}}
 fluids:
-  warm: {{constants: {{density: 1000 kg/m^3, viscosity: 0.001 Pa s, conductivity: 0.6 W/(m K), heat capacity: "{hot_cp}"}}, source: s}}
-  cool: {{constants: {{density: 1000 kg/m^3, viscosity: 0.001 Pa s, conductivity: 0.6 W/(m K), heat capacity: "{cold_cp}"}}, source: s}}
+  warm:
+    constants: {{density: 1000 kg/m^3, viscosity: 0.001 Pa s, conductivity: 0.6 W/(m K), heat capacity: "{hot_cp}"}}
+    source: s
+  cool:
+    constants: {{density: 1000 kg/m^3, viscosity: 0.001 Pa s, conductivity: 0.6 W/(m K), heat capacity: "{cold_cp}"}}
+    source: s
 streams:
   hot: {{fluid: warm, flow: m_h, phase: liquid}}
   cold: {{fluid: cool, flow: m_c, phase: liquid}}

@@ -12,6 +12,7 @@ from fluids import friction
 from small_calculations import COOLER, OIL, chain_of, givens
 
 from calcbook.chain import pressure
+from calcbook.chain.named_results import conditions_of, result_values
 from calcbook.chain.pressure import drops, evaluate_pressure_drops, law_of
 from calcbook.chain.solve import Solution, solve
 from calcbook.chain.types import CLEAN, CONDITIONS, SERVICE, Chain
@@ -20,7 +21,6 @@ from calcbook.interface import read, record_text, solve_file
 from calcbook.interface import solve as solve_calculation
 from calcbook.library import Library, load_method
 from calcbook.library.checking import check_method, check_situation, uncovered_constants
-from calcbook.revisions.named_results import conditions_of, result_values
 
 CALCS = Path(__file__).resolve().parents[2] / "calcs"
 PSI = 6894.757293168361

@@ -14,7 +14,6 @@ from calcbook.record.numbers import (
     CONCLUSION_DIGITS,
     NOT_KNOWN,
     PLAIN_DIGITS,
-    fixed,
     in_report_unit,
     number,
     percent,
@@ -155,12 +154,13 @@ def _allowance_row(page: Page, figure: str, layers: tuple[Layer, ...]) -> tuple[
 def _parts(page: Page, parts: Parts) -> list[Block]:
     area = unit_text(report_unit(vocabulary()["area"], page.calculation.report))
     overall = unit_text(report_unit(vocabulary()["overall coefficient"], page.calculation.report))
+    difference = unit_text(report_unit(vocabulary()["temperature difference"], page.calculation.report))
     rows = [
         (
             str(row.number),
             _ends(page, row.hot),
             _ends(page, row.cold),
-            fixed(row.difference, 2),
+            _plain(page, row.difference, "temperature difference", PLAIN_DIGITS),
             *(
                 text
                 for condition in ("service", "clean")
@@ -188,7 +188,7 @@ def _parts(page: Page, parts: Parts) -> list[Block]:
                 "Part",
                 "Hot, in to out",
                 "Cold, in to out",
-                "ΔT_lm, K",
+                f"ΔT_lm, {difference}",
                 f"U service, {overall}",
                 f"A service, {area}",
                 f"U clean, {overall}",

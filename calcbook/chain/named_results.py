@@ -7,6 +7,7 @@ from collections.abc import Mapping
 
 import numpy as np
 
+from calcbook.chain.duty import DUTY_RESULTS
 from calcbook.chain.pressure import drops, evaluate_pressure_drops
 from calcbook.chain.solve import Solution
 from calcbook.chain.types import CLEAN, CONDITIONS, SERVICE, Chain, Group
@@ -24,6 +25,8 @@ def conditions_of(name: str) -> tuple[str, ...]:
     """The conditions that a result is made from."""
     if name in RATIOS:
         return CONDITIONS
+    if name in DUTY_RESULTS:
+        return (DUTY_RESULTS[name][0],)
     found = _WITH_CONDITION.fullmatch(name) or _OF_TERM.fullmatch(name) or _PRESSURE_DROP.fullmatch(name)
     return (CLEAN,) if found is not None and CLEAN in found.groups() else (SERVICE,)
 
@@ -39,6 +42,9 @@ def result_values(chain: Chain, solutions: Mapping[str, Solution], name: str) ->
     if name in RATIOS:
         clean, service = (_value(solutions[condition], chain.results["U"]) for condition in CONDITIONS)
         return service / clean if name == "cleanliness" else clean / service - 1.0
+    if name in DUTY_RESULTS:
+        condition, key = DUTY_RESULTS[name]
+        return _value(solutions[condition], chain.results[key]) if key in chain.results else None
     found = _WITH_CONDITION.fullmatch(name)
     if found is not None:
         key = _IN_TABLE[found[1]] + (f" on {found[3]}" if found[3] else "")
