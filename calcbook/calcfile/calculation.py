@@ -179,12 +179,26 @@ class Geometry:
 
 @dataclass(frozen=True, slots=True)
 class Deposit:
-    """A fouling layer by thickness and conductivity."""
+    """A fouling layer by thickness and conductivity; without a thickness it follows from a growing resistance."""
 
     thickness: Value | None
     conductivity: Value | None
     narrows: bool
     place: Place
+
+
+@dataclass(frozen=True, slots=True)
+class Growth:
+    """A fouling resistance that grows in service: its card, the time in service, the card's figures by symbol."""
+
+    model: str
+    after: Value | None
+    values: Mapping[str, Value]
+    text_places: Mapping[str, Place]
+    place: Place
+
+    def place_of(self, key: str) -> Place:
+        return self.text_places.get(key, self.place)
 
 
 @dataclass(frozen=True, slots=True)
@@ -213,6 +227,7 @@ class Term:
     values: Mapping[str, Value] = field(default_factory=dict)
     with_values: Mapping[str, Value] = field(default_factory=dict)
     deposit: Deposit | None = None
+    growth: Growth | None = None
     fins: Fins | None = None
     branches: tuple[Term, ...] = ()
     includes: tuple[str, ...] = ()

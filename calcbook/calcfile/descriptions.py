@@ -244,7 +244,13 @@ DEPOSIT = Description(
     "a deposit",
     "a fouling layer by thickness",
     (
-        Key("thickness", "thickness of the layer", "node", of=SOURCED, quantity="thickness", required=True),
+        Key(
+            "thickness",
+            "thickness of the layer; it follows from the resistance where that grows",
+            "node",
+            of=SOURCED,
+            quantity="thickness",
+        ),
         Key(
             "conductivity",
             "conductivity of the layer",
@@ -269,6 +275,22 @@ FOULING_SPECIFIED = Description(
             of=Description("a split", "", free=Key("<term>", "share of a fouling term", "node", of=SOURCED)),
         ),
     ),
+)
+GROWTH = Description(
+    "a growth",
+    "a fouling resistance that grows in service",
+    (
+        Key("model", "method card of the growth, such as kern-seaton-1959", "name", required=True),
+        Key(
+            "after",
+            "time in service since the last cleaning",
+            "node",
+            of=SOURCED,
+            quantity="service time",
+            required=True,
+        ),
+    ),
+    free=Key("<symbol>", "figure that the card of the growth needs", "node", of=SOURCED),
 )
 FINS = Description(
     "fins",
@@ -326,7 +348,7 @@ TERM = Description(
         Key("includes", "terms that a stated coefficient already includes", "list"),
         Key("holds for", "range in which a stated value holds: {symbol: low .. high}", "mapping"),
         Key("scales with", "factor on a stated value, as a relation", "relation"),
-        Key("growth", "fouling growth", "node", later=True),
+        Key("growth", "fouling resistance that grows in service", "mapping", of=GROWTH),
         Key("fins", "fins on the surface that the film acts on", "mapping", of=FINS),
         Key(
             "vapour velocity", "speed of a condensing vapour", "node", of=SOURCED, quantity="vapour velocity"
@@ -349,7 +371,7 @@ TERM_KEYS = {
         "scales with",
         "fins",
     ),
-    "fouling": (*_STATED, "deposit", "service"),
+    "fouling": (*_STATED, "deposit", "growth", "service"),
     "wall": ("material", "conductivity", "thickness", "outside diameter", "resistance", "on"),
     "contact": _STATED,
     "radiation": ("emissivity", "surroundings", "method"),
@@ -367,6 +389,8 @@ TERM_CONFLICTS = (
     ("resistance", "with"),
     ("resistance", "deposit"),
     ("coefficient", "deposit"),
+    ("resistance", "growth"),
+    ("coefficient", "growth"),
     ("resistance", "material"),
     ("resistance", "conductivity"),
     ("material", "conductivity"),

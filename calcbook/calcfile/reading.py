@@ -22,6 +22,7 @@ from calcbook.calcfile.calculation import (
     FluidText,
     Geometry,
     Given,
+    Growth,
     Report,
     Revision,
     Settings,
@@ -912,7 +913,8 @@ class Reader:
             text_places={key: fields.place_of(key) for key in fields},
             values=values,
             with_values=self.with_values(fields.node("with")),
-            deposit=self.deposit(fields.node("deposit")),
+            deposit=self.deposit(fields.node("deposit"), "growth" in fields),
+            growth=self.growth(fields.node("growth")),
             fins=self.fins(fields.node("fins")),
             includes=self.names_of(fields.node("includes")),
             holds_for=self.range_of(fields.node("holds for")),
@@ -1009,14 +1011,42 @@ class Reader:
             return {}
         return {key.text: value for key, item in node.entries if (value := self.value(item)) is not None}
 
-    def deposit(self, node: Node | None) -> Deposit | None:
+    def deposit(self, node: Node | None, grows: bool) -> Deposit | None:
         if node is None:
             return None
         fields = read_mapping(node, described.DEPOSIT, self.collector, node.place)
+        if grows and "thickness" in fields:
+            self.collector.add(
+                "key-conflict",
+                fields.place_of("thickness"),
+                "the thickness of a deposit that grows follows from its resistance",
+                found="thickness",
+                expected="conductivity, narrows",
+            )
+        elif not grows and isinstance(node, MappingNode) and node.key("thickness") is None:
+            self.collector.add(
+                "key-missing",
+                fields.place,
+                "a deposit lacks the key `thickness`",
+                expected="thickness: thickness of the layer; or growth: {…} on the term",
+            )
         return Deposit(
             self.value(fields.node("thickness")),
             self.value(fields.node("conductivity")),
             fields.text("narrows") in ("yes", "true"),
+            node.place,
+        )
+
+    def growth(self, node: Node | None) -> Growth | None:
+        if node is None:
+            return None
+        fields = read_mapping(node, described.GROWTH, self.collector, node.place)
+        figures = (key for key in fields if key not in described.GROWTH.names())
+        return Growth(
+            fields.text("model"),
+            self.value(fields.node("after")),
+            {key: value for key in figures if (value := self.value(fields.node(key))) is not None},
+            dict(fields.key_places) | {"model": fields.place_of("model")},
             node.place,
         )
 

@@ -45,7 +45,7 @@ def read_specified(reader: Reader, terms: tuple[Term, ...]) -> FoulingSpecified 
 def is_open(term: Term) -> bool:
     """Whether a fouling term states no resistance of its own."""
     stated = any(key in term.values for key in ("resistance", "coefficient"))
-    return term.kind == "fouling" and not stated and term.deposit is None
+    return term.kind == "fouling" and not stated and term.deposit is None and term.growth is None
 
 
 def _split(reader: Reader, node: Node | None) -> dict[str, Value]:

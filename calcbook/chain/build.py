@@ -12,6 +12,7 @@ from calcbook.chain.circuit import Circuit
 from calcbook.chain.duty import DutyLayout
 from calcbook.chain.films import FilmScope
 from calcbook.chain.fins import FinnedSide, check_finned_situation, lay_out_fins, lay_out_fins_layer
+from calcbook.chain.growth import Grown, GrownDeposit, lay_out_growth, lay_out_thickness
 from calcbook.chain.petroleum import lay_out_cards
 from calcbook.chain.pressure import asked_symbols, lay_out_pressure_drop
 from calcbook.chain.scope import Scope, unnamed_kind
@@ -41,6 +42,7 @@ from calcbook.library.cards import Limit, Method, Situation, State
 from calcbook.library.conductivity import ConductivityTable
 from calcbook.quantities import DIMENSIONLESS, QuantityKind, as_kind
 
+FOULING_WAYS = ", or deposit: {thickness: …, conductivity: …}, or growth: {model: …, after: …}"
 WALL_CARDS = {"tube": "wall-cylinder", "plane": "wall-plane", "sphere": "wall-sphere"}
 
 
@@ -68,6 +70,7 @@ class _Builder:
         self.duty = (
             DutyLayout(self.scope, library, calculation.duty) if calculation.duty is not None else None
         )
+        self.growing: dict[str, Grown | None] = {}
 
     def chain(self) -> Chain | None:
         calculation, scope = self.calculation, self.scope
@@ -501,6 +504,8 @@ class _Builder:
         surface = self._surface(term, shape, default if default is not None else at)
         if surface is None:
             return None
+        if term.growth is not None:
+            return self._growing_layer(term, shape, surface, at)
         if term.deposit is not None:
             return self._deposit(term, shape, surface)
         if self.specified is not None and is_open(term):
@@ -529,8 +534,7 @@ class _Builder:
                     "need-missing",
                     term.place,
                     f"`{term.name}` has no resistance",
-                    expected="resistance: … m^2 K/W"
-                    + (", or deposit: {thickness: …, conductivity: …}" if term.kind == "fouling" else ""),
+                    expected="resistance: … m^2 K/W" + (FOULING_WAYS if term.kind == "fouling" else ""),
                 )
             return None
         return Layer(term.name, term.kind, surface, resistance)
@@ -555,16 +559,74 @@ class _Builder:
         side = "inside" if terms.index(term) < walls[0] else "outside"
         return shape.wetted(side) if side == self.finned.side else None
 
+    def _growing_layer(self, term: Term, shape: Shape, surface: int, at: int) -> Layer | None:
+        """A fouling layer whose resistance its growth card gives; a deposit beside it gives it a thickness."""
+        grown = self._grown(term)
+        if grown is None:
+            return None
+        checks = grown.checks
+        if term.deposit is not None:
+            if self._narrows_fins(term, shape):
+                return None
+            if surface != at:
+                self.collector.add(
+                    "key-conflict",
+                    term.deposit.place,
+                    "the thickness of a deposit follows from the resistance on the surface that it lies on",
+                    found=f"on: {shape.surfaces[surface].name}",
+                    expected=f"on: {shape.surfaces[at].name}, or no `deposit`",
+                )
+                return None
+            deposit = self._grown_deposit(term, grown, shape, at)
+            if deposit is None:
+                return None
+            checks += deposit.checks
+        return Layer(term.name, term.kind, surface, grown.resistance, checks=checks)
+
+    def _grown(self, term: Term) -> Grown | None:
+        """The growth of a term, laid out when it is first asked for."""
+        if term.name not in self.growing:
+            self.growing[term.name] = lay_out_growth(self.scope, self.library, term)
+            self._evaluate_first(term)
+        return self.growing[term.name]
+
+    def _evaluate_first(self, term: Term) -> None:
+        """What has grown follows from the file alone, though films take it: it is evaluated before them."""
+        self.early |= {step.id for step in self.scope.steps.values() if step.owner == term.name}
+
+    def _thickness(self, term: Term, shape: Shape, side: str) -> str:
+        """The id of a deposit's thickness: as stated, or from the resistance that has grown; empty after a fault."""
+        assert term.deposit is not None
+        if term.growth is None:
+            return self.scope.value(term.deposit.thickness, "thickness", term.name, "thickness")
+        grown = self._grown(term)
+        if grown is None:
+            return ""
+        deposit = self._grown_deposit(term, grown, shape, shape.bare(side))
+        return deposit.thickness if deposit is not None else ""
+
+    def _grown_deposit(self, term: Term, grown: Grown, shape: Shape, surface: int) -> GrownDeposit | None:
+        deposit = lay_out_thickness(self.scope, self.library, term, grown, shape, surface)
+        self._evaluate_first(term)
+        return deposit
+
+    def _narrows_fins(self, term: Term, shape: Shape) -> bool:
+        """Whether a deposit is to narrow the flow over fins, which is a fault."""
+        assert term.deposit is not None
+        if not term.deposit.narrows or self._wetted_surface(term, shape) is None:
+            return False
+        self.collector.add(
+            "key-conflict",
+            term.deposit.place,
+            "a deposit on fins cannot narrow the flow",
+            found="narrows: yes",
+            expected="narrows: no on a finned surface",
+        )
+        return True
+
     def _deposit(self, term: Term, shape: Shape, surface: int) -> Layer | None:
         assert term.deposit is not None
-        if term.deposit.narrows and self._wetted_surface(term, shape) is not None:
-            self.collector.add(
-                "key-conflict",
-                term.deposit.place,
-                "a deposit on fins cannot narrow the flow",
-                found="narrows: yes",
-                expected="narrows: no on a finned surface",
-            )
+        if self._narrows_fins(term, shape):
             return None
         thickness = self.scope.value(term.deposit.thickness, "thickness", term.name, "thickness")
         conductivity = self.scope.value(
@@ -852,8 +914,7 @@ class _Builder:
         sign = "-" if side == "inside" else "+"
         self.scope.constant(SERVICE_FLAG, 1.0)
         for term in layers:
-            assert term.deposit is not None
-            thickness = self.scope.value(term.deposit.thickness, "thickness", term.name, "thickness")
+            thickness = self._thickness(term, shape, side)
             if not thickness:
                 return shape.dimensions, None
             wetted = self.scope.relation_step(

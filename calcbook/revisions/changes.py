@@ -30,6 +30,7 @@ WAY = frozenset(
         "material",
         "conductivity",
         "deposit",
+        "growth",
         "thickness",
         "outside diameter",
         "fins",
@@ -505,8 +506,11 @@ class _Differences:
         if part == "parallel" and both:
             for name, _, was, now in self._pairs(old, new, part):
                 self._term((*path, name), name, was, now, None)
-        elif part in ("with", "deposit", "fins") and both:
+        elif part in ("with", "deposit", "growth", "fins") and both:
             for name, inner_key, was, now in self._pairs(old, new, part):
+                if part == "growth" and name == "model":
+                    self._whole((*path, name), "method", f"{title} {name}", was, now, inner_key, moves=True)
+                    continue
                 self._figure((*path, name), "term", f"{title} {name}", was, now, inner_key)
         elif part in ("method", "situation"):
             self._whole(path, "method", title, old, new, key, moves=True)

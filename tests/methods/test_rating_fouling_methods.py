@@ -52,6 +52,7 @@ CARDS = (
     "polley-2002",
     "deposit-thickness-inside",
     "deposit-thickness-outside",
+    "deposit-thickness-flat",
     "deposit-dp-ratio",
     "cleaning-interval-linear",
     "cleaning-interval-asymptotic",
