@@ -124,7 +124,18 @@ def _solved(calculation: Calculation, library: Library, collector: Collector) ->
     if chain is not None and library.house is not None:
         check_house_cards(chain, collector)
     solved = analyse(chain, collector) if chain is not None else None
-    return rated(solved) if solved is not None else None
+    return _assessed(rated(solved), collector) if solved is not None else None
+
+
+def _assessed(solved: Solved, collector: Collector) -> Solved:
+    """The solved calculation with its uncertainty, where a tolerance is stated or the file asks."""
+    calculation = solved.chain.calculation
+    stated = any(given.tolerance is not None for given in calculation.givens.values())
+    if not stated and calculation.uncertainty is None:
+        return solved
+    from calcbook.uncertainty.assessing import with_uncertainty
+
+    return with_uncertainty(solved, collector)
 
 
 def check_house_cards(chain: Chain, collector: Collector) -> None:

@@ -32,6 +32,7 @@ ORDER = (
     "calcfile",
     "chain",
     "rating",
+    "uncertainty",
     "record",
     "links",
     "interface",
@@ -57,8 +58,8 @@ OWNERS = {
     "rich": {"commands", "book"},
     "platformdirs": {"properties", "book"},
     "markdown_it": {"record"},
-    "scipy": {"formulas", "chain"},
-    "numpy": {"formulas", "properties", "library", "chain", "rating", "record", "revisions"},
+    "scipy": {"formulas", "chain", "uncertainty"},
+    "numpy": {"formulas", "properties", "library", "chain", "rating", "uncertainty", "record", "revisions"},
 }
 # A run never asks the machine about itself: same input, same bytes. Sign-off dates are compared with today
 # in `revisions`; the cache folder is named by the environment in `properties`.

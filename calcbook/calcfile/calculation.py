@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 
 from calcbook.calcfile.links import Link
+from calcbook.calcfile.uncertainty import UncertaintyText
 from calcbook.faults import Place
 from calcbook.formulas import Relation
 from calcbook.quantities import Quantity
@@ -35,12 +37,17 @@ class Value:
 
 @dataclass(frozen=True, slots=True)
 class Tolerance:
-    """A tolerance as written: rectangular half-width, standard, or expanded with its factor k."""
+    """A tolerance as written: ``kind`` is rectangular, triangular, standard, or expanded with its factor k.
+
+    ``degrees`` are the degrees of freedom behind a standard or expanded tolerance; infinite where none are
+    stated.
+    """
 
     text: str
     place: Place
     kind: str
     factor: float = 1.0
+    degrees: float = math.inf
 
 
 @dataclass(frozen=True, slots=True)
@@ -334,3 +341,4 @@ class Calculation:
     broken: frozenset[str] = frozenset()
     duty: Duty | None = None
     fouling_specified: FoulingSpecified | None = None
+    uncertainty: UncertaintyText | None = None

@@ -38,11 +38,14 @@ REVISION = Description(
 )
 TOLERANCE = Description(
     "a tolerance",
-    "standard or expanded tolerance",
+    "a tolerance with its distribution",
     (
+        Key("rectangular", "half-width within which every value is as likely", "quantity"),
+        Key("triangular", "half-width of a distribution that falls evenly from the value", "quantity"),
         Key("standard", "standard deviation", "quantity"),
         Key("expanded", "expanded tolerance", "quantity"),
         Key("k", "coverage factor of the expanded tolerance", "number"),
+        Key("degrees of freedom", "of a standard or expanded tolerance from few readings", "number"),
     ),
 )
 LINK = Description(
@@ -61,7 +64,12 @@ GIVEN = Description(
         Key("value", "number with unit, as the source writes it", "name", example="15.75 mm"),
         Key("is", "what the symbol means"),
         Key("source", "document, revision and place the value comes from"),
-        Key("tolerance", "half-width, or {standard: …}, or {expanded: …, k: 2}", "node", of=TOLERANCE),
+        Key(
+            "tolerance",
+            "half-width, or {triangular: …}, {standard: …}, {expanded: …, k: 2}",
+            "node",
+            of=TOLERANCE,
+        ),
         Key("from", "a result of another calculation, in place of a value", "mapping", of=LINK),
     ),
 )
@@ -433,6 +441,30 @@ ACCEPT = Description(
         Key("date", "YYYY-MM-DD", "date", required=True),
     ),
 )
+CORRELATION = Description(
+    "a correlation",
+    "two givens whose errors go together",
+    (
+        Key("between", "the two givens", "list", required=True),
+        Key("r", "correlation coefficient, -1 to 1", "number", required=True),
+        Key("source", "what shows that they go together"),
+    ),
+)
+UNCERTAINTY = Description(
+    "uncertainty",
+    "uncertainty of results by sampling, beside the budget that every stated tolerance gives",
+    (
+        Key("of", "results, such as U_service; absent: U and what acceptance names", "list"),
+        Key("coverage", "coverage probability; absent: 95 %", "name", example="95 %"),
+        Key(
+            "digits",
+            "significant digits of a standard uncertainty that the sampling makes sure of",
+            "choice",
+            choices=("1", "2"),
+        ),
+        Key("correlation", "givens whose errors go together", "list", of=CORRELATION),
+    ),
+)
 FILE = Description(
     "the calculation file",
     "one calculation",
@@ -483,6 +515,7 @@ FILE = Description(
             of=Description("cases", "", free=Key("<case>", "name of a case", "mapping")),
         ),
         Key("accept", "answers to failed checks", "list", of=ACCEPT),
+        Key("uncertainty", "uncertainty of results by sampling", "mapping", of=UNCERTAINTY),
         Key("duty", "duty of the unit", "mapping", of=DUTY),
         Key(
             "fouling specified as",

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import datetime
 import keyword
+import math
 import re
 from collections.abc import Iterable, Mapping
 from dataclasses import replace
@@ -36,6 +37,7 @@ from calcbook.calcfile.links import LinkText, Resolve
 from calcbook.calcfile.meaning import meaning_of
 from calcbook.calcfile.specified import read_specified
 from calcbook.calcfile.tablefile import read_table_file
+from calcbook.calcfile.uncertainty import read_uncertainty
 from calcbook.documents import Description, Document, Fields, Node, Scalar, Sequence, read_file, read_mapping
 from calcbook.documents import Mapping as MappingNode
 from calcbook.faults import Collector, Faults, Place, nearest_names, shown
@@ -66,6 +68,8 @@ DEVICES = frozenset(
     ("con", "prn", "aux", "nul", *(f"{port}{number}" for port in ("com", "lpt") for number in range(1, 10)))
 )
 FLUID_KINDS = ("mixture", "humid air", "petroleum", "table", "table file", "constants")
+TOLERANCES = ("rectangular", "triangular", "standard", "expanded")
+DEGREES = "degrees of freedom"
 CASE_WORDS = ("all", "base", "clean", "service")
 RESERVED = frozenset(
     [
@@ -197,6 +201,9 @@ class Reader:
             broken=frozenset(self.broken),
             duty=duty,
             fouling_specified=specified,
+            uncertainty=read_uncertainty(
+                self.fields.node("uncertainty"), (*givens, *self.broken), self.collector
+            ),
         )
 
     def meaning(self) -> object:
@@ -459,20 +466,32 @@ class Reader:
         if isinstance(node, Scalar):
             return self.half_width(node, quantity, "rectangular", 1.0)
         fields = read_mapping(node, described.TOLERANCE, self.collector, node.place)
-        stated = [kind for kind in ("standard", "expanded") if kind in fields]
+        stated = [kind for kind in TOLERANCES if kind in fields]
         if not stated:
             self.collector.add(
                 "key-missing",
                 node.place,
-                "a tolerance says `standard` or `expanded`",
+                "a tolerance says `standard` or `expanded`, `rectangular` or `triangular`",
                 expected="{standard: 0.5 %} or {expanded: 1 %, k: 2}",
             )
             return None
-        self.refuse_pair(fields, "standard", "expanded")
-        self.refuse_pair(fields, "standard", "k")
+        for other in stated[1:]:
+            self.refuse_pair(fields, stated[0], other)
+        if stated[0] != "expanded":
+            self.refuse_pair(fields, stated[0], "k")
+        if stated[0] in ("rectangular", "triangular"):
+            self.refuse_pair(fields, stated[0], DEGREES)
+        if stated[0] == "expanded" and "k" not in fields:
+            self.collector.add(
+                "key-missing",
+                node.place,
+                "an expanded tolerance states its coverage factor `k`",
+                expected="{expanded: 1 %, k: 2}",
+            )
         scalar = fields.scalar(stated[0])
         assert scalar is not None
-        return self.half_width(scalar, quantity, stated[0], self.coverage_factor(fields))
+        found = self.half_width(scalar, quantity, stated[0], self.coverage_factor(fields))
+        return replace(found, degrees=self.degrees_of_freedom(fields)) if found is not None else None
 
     def half_width(self, node: Scalar, quantity: Quantity, kind: str, factor: float) -> Tolerance | None:
         """A tolerance whose text can be read beside its value; what it does is settled later."""
@@ -500,6 +519,21 @@ class Reader:
             )
             return 1.0
         return factor
+
+    def degrees_of_freedom(self, fields: Fields) -> float:
+        node = fields.scalar(DEGREES)
+        if node is None:
+            return math.inf
+        if re.fullmatch(r"[1-9][0-9]{0,5}", node.text) is None:
+            self.collector.add(
+                "number-unreadable",
+                node.place,
+                "degrees of freedom are a whole number above zero",
+                found=shown(node.text),
+                expected="the number of readings less one, such as 9",
+            )
+            return math.inf
+        return float(node.text)
 
     def derived(self, givens: Mapping[str, Given]) -> dict[str, Derived]:
         result = {}

@@ -8,6 +8,7 @@ from dataclasses import dataclass
 from calcbook.chain.rating_outcome import Rating
 from calcbook.chain.solve import Solution
 from calcbook.chain.types import Chain, ChainStep, Input, OpenItem, RunnerAssumption
+from calcbook.chain.uncertainty_outcome import Uncertainty
 from calcbook.quantities import QuantityKind
 
 
@@ -195,6 +196,7 @@ class Solved:
     cards: Mapping[str, str]
     governing: str
     rating: Rating | None = None
+    uncertainty: Uncertainty | None = None
 
     @property
     def base(self) -> CaseOutcome:

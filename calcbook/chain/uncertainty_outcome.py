@@ -1,0 +1,165 @@
+"""What is known of the uncertainty of results: budgets, samples, chances. Frozen, nothing computes."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+
+from calcbook.quantities import QuantityKind
+
+
+@dataclass(frozen=True, slots=True)
+class BudgetInput:
+    """A figure that is not known exactly: a given with its tolerance, or the factor of a method.
+
+    ``rule`` says how the standard uncertainty follows from what is stated, in words.
+    """
+
+    id: str
+    symbol: str
+    title: str
+    kind: QuantityKind
+    value: float
+    standard: float
+    distribution: str
+    rule: str
+    degrees: float
+    is_method: bool
+
+
+@dataclass(frozen=True, slots=True)
+class BudgetRow:
+    """One line of a budget: the slope of the result in a figure, and what its uncertainty moves the result by.
+
+    ``share`` of the variance is NaN where correlated figures cannot be told apart.
+    """
+
+    input: BudgetInput
+    slope: float
+    contribution: float
+    share: float
+
+
+@dataclass(frozen=True, slots=True)
+class Budget:
+    """The first-order uncertainty of one result.
+
+    ``degrees`` are the effective degrees of freedom (infinite where none are stated); ``wide_standard`` is the
+    standard uncertainty from finite differences of one standard uncertainty to either side, NaN where the
+    chain has no value there.
+    """
+
+    result: str
+    title: str
+    kind: QuantityKind
+    value: float
+    rows: tuple[BudgetRow, ...]
+    standard: float
+    factor: float
+    expanded: float
+    degrees: float
+    wide_standard: float
+    is_nonlinear: bool
+
+    @property
+    def relative(self) -> float:
+        """The expanded uncertainty over the value."""
+        return self.expanded / abs(self.value) if self.value else math.nan
+
+
+@dataclass(frozen=True, slots=True)
+class LeftOut:
+    """A method whose accuracy gives no figure to propagate: the term, the card, and why."""
+
+    term: str
+    card: str
+    reason: str
+
+
+@dataclass(frozen=True, slots=True)
+class CorrelationRow:
+    """A stated correlation of two givens."""
+
+    first: str
+    second: str
+    coefficient: float
+    source: str
+
+
+@dataclass(frozen=True, slots=True)
+class SampledResult:
+    """One result over the samples: mean, standard uncertainty, and the coverage interval of equal tails.
+
+    ``spread`` are twice the standard deviations of mean, standard uncertainty and both ends between the
+    blocks' averages; the sampling stops when all are below ``aim``. ``tolerance`` is half of the last digit
+    that is made sure of; the budget is validated where its interval differs by less at both ends.
+    """
+
+    result: str
+    title: str
+    kind: QuantityKind
+    mean: float
+    standard: float
+    low: float
+    high: float
+    spread: tuple[float, float, float, float]
+    tolerance: float
+    aim: float
+    low_difference: float
+    high_difference: float
+    is_validated: bool
+
+
+@dataclass(frozen=True, slots=True)
+class Chance:
+    """How often a statement holds over the samples, with the standard deviation of that share."""
+
+    id: str
+    text: str
+    nominal: bool
+    probability: float
+    deviation: float
+
+
+@dataclass(frozen=True, slots=True)
+class OutsideRow:
+    """A limit that samples leave: how many of them, and its state at the stated values."""
+
+    check: str
+    condition: str
+    level: str
+    samples: int
+    nominal: str
+
+
+@dataclass(frozen=True, slots=True)
+class Sampling:
+    """A Monte Carlo propagation.
+
+    ``unanswered`` samples have no result (no solution, a figure that cannot be, or outside a limit that
+    stops); ``outside`` counts the limits that the others leave; ``outside_any`` the samples that leave one.
+    """
+
+    trials: int
+    blocks: int
+    block_size: int
+    is_capped: bool
+    results: tuple[SampledResult, ...]
+    chances: tuple[Chance, ...]
+    not_sampled: tuple[str, ...]
+    unanswered: int
+    outside: tuple[OutsideRow, ...]
+    outside_any: int
+    generator: str
+
+
+@dataclass(frozen=True, slots=True)
+class Uncertainty:
+    """The uncertainty of a calculation's results at the base case."""
+
+    coverage: float
+    budgets: tuple[Budget, ...]
+    left_out: tuple[LeftOut, ...]
+    correlations: tuple[CorrelationRow, ...]
+    exact_allowances: tuple[str, ...]
+    sampling: Sampling | None = None

@@ -1,0 +1,60 @@
+"""The accuracy that a card states, as the distribution of a factor on its coefficient.
+
+The rules are those of the method notes: a mean deviation, a share of the data within a band, most data within
+a band, or a band alone, which is then taken as a bound. What says none of these gives no figure.
+"""
+
+from __future__ import annotations
+
+import math
+import re
+from dataclasses import dataclass
+from statistics import NormalDist
+
+from calcbook.library.cards import Accuracy
+from calcbook.uncertainty.distributions import LARGEST_NORMAL, Distribution, LogNormal, Rectangular, positive
+
+BAND = re.compile(r"([0-9]+(?:\.[0-9]+)?) %")
+MEAN = re.compile(r"([0-9]+(?:\.[0-9]+)?) % mean")
+SHARE = re.compile(r"([0-9]+(?:\.[0-9]+)?) % of ")
+MOST = "most data"
+MOST_SHARE = 0.95
+
+
+@dataclass(frozen=True, slots=True)
+class Factor:
+    """The distribution of a factor around 1, and the rule that made it, in words."""
+
+    distribution: Distribution
+    rule: str
+
+
+def factor_from(accuracy: Accuracy | None) -> Factor | str:
+    """The factor that an accuracy stands for; the reason, in words, where it gives no figure."""
+    if accuracy is None:
+        return "its card states no accuracy"
+    stated = f"within {accuracy.within}, {accuracy.coverage}"
+    mean = MEAN.fullmatch(accuracy.within)
+    if mean is not None:
+        deviation = float(mean[1]) / 100.0
+        return Factor(
+            positive(1.0, deviation * math.sqrt(math.pi / 2.0)),
+            f"{stated}: mean deviation × √(π/2)",
+        )
+    band = BAND.fullmatch(accuracy.within)
+    if band is None:
+        return f"its accuracy ({stated}) is not one figure for the coefficient"
+    half_width = float(band[1]) / 100.0
+    share = SHARE.match(accuracy.coverage)
+    if share is not None or accuracy.coverage == MOST:
+        part = float(share[1]) / 100.0 if share is not None else MOST_SHARE
+        if not 0.0 < part < 1.0:
+            return f"its accuracy ({stated}) is not one figure for the coefficient"
+        quantile = NormalDist().inv_cdf(0.5 * (1.0 + part))
+        words = f"{100.0 * part:g} % of the data" if share is not None else "most data, taken as 95 %"
+        return Factor(positive(1.0, half_width / quantile), f"{stated}: {words}, divided by {quantile:.3f}")
+    bound = Rectangular(1.0, half_width)
+    rule = f"{stated}: taken as a bound, divided by √3"
+    # A bound that reaches to zero, or near it, is no rectangle of a factor that is above zero.
+    wide = bound.standard > LARGEST_NORMAL
+    return Factor(LogNormal(1.0, bound.standard) if wide else bound, rule)

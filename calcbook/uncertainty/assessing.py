@@ -1,0 +1,335 @@
+"""The uncertainty of a solved calculation: budgets where tolerances are stated, samples where the file asks."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import replace
+
+import numpy as np
+
+from calcbook.calcfile.uncertainty import USUAL_COVERAGE, UncertaintyText
+from calcbook.chain.checks import evaluate_check
+from calcbook.chain.factors import with_factors
+from calcbook.chain.outcome import Result, Solved
+from calcbook.chain.sensitivity import derivatives
+from calcbook.chain.types import Chain, Layer
+from calcbook.chain.uncertainty_outcome import (
+    Budget,
+    BudgetRow,
+    Chance,
+    CorrelationRow,
+    LeftOut,
+    OutsideRow,
+    SampledResult,
+    Sampling,
+    Uncertainty,
+)
+from calcbook.faults import Collector, nearest_names, shown
+from calcbook.uncertainty.budget import (
+    Correlations,
+    correlation_matrix,
+    coverage_factor,
+    first_order,
+    is_nonlinear,
+    wide_slopes,
+)
+from calcbook.uncertainty.figures import Uncertain, method_figures, stated_figures
+from calcbook.uncertainty.measured import Measured, measured
+from calcbook.uncertainty.samples import OUTSIDE_ANY, ChainModel, Statement
+from calcbook.uncertainty.sampling import GENERATOR, Drawn, Interval, Propagated, is_possible, propagate
+
+Array = np.ndarray
+# What a budget is made of where the file names no result, as far as the calculation has it.
+USUAL_RESULTS = ("U_service", "U_clean", "area_service", "area_margin")
+MARGIN = "area_margin"
+POSITIVE_MARGIN = "area_margin > 0"
+
+
+def with_uncertainty(solved: Solved, collector: Collector) -> Solved:
+    """The solved calculation with the uncertainty of its results at the base case.
+
+    A budget needs a tolerance, or `uncertainty:` in the file; samples are drawn where the file has that.
+    Codes: tolerance-beyond-value, result-unknown, result-not-propagated, correlation-without-tolerance,
+    correlation-impossible.
+    """
+    asked = solved.chain.calculation.uncertainty
+    figures = stated_figures(solved.chain, collector)
+    if not figures and asked is None:
+        return solved
+    chain = with_factors(solved.chain)
+    factors, left_out = method_figures(chain, solved.base.solutions)
+    results = _results(solved, chain, asked, collector)
+    correlations = _correlations(asked, figures, collector)
+    if collector or not results:
+        return solved
+    return replace(
+        solved,
+        uncertainty=_Assessment(
+            solved, chain, (*figures, *factors), left_out, results, correlations, asked
+        ).uncertainty(),
+    )
+
+
+def _results(
+    solved: Solved, chain: Chain, asked: UncertaintyText | None, collector: Collector
+) -> tuple[Measured, ...]:
+    """The results to be assessed, by the steps that give them."""
+    known = solved.base.results
+    found: dict[str, Measured] = {}
+    for item in asked.results if asked is not None else ():
+        one = measured(chain, item.name)
+        if item.name not in known:
+            collector.add(
+                "result-unknown",
+                item.place,
+                f"there is no result `{shown(item.name)}`",
+                found=shown(item.name),
+                expected=", ".join(known),
+                nearest=nearest_names(item.name, known),
+            )
+        elif one is None:
+            collector.add(
+                "result-not-propagated",
+                item.place,
+                f"the uncertainty of `{shown(item.name)}` is not worked out",
+                found=shown(item.name),
+                expected=", ".join(name for name in known if measured(chain, name) is not None),
+            )
+        else:
+            found[item.name] = one
+    if asked is not None and asked.results:
+        return tuple(found.values())
+    named = [criterion.result for criterion in chain.calculation.acceptance]
+    for name in (*USUAL_RESULTS, *named):
+        one = measured(chain, name) if name in known else None
+        # One figure under two names (U on bare tubes is U on the outside) has one budget.
+        if one is not None and all(one.parts != other.parts for other in found.values()):
+            found[name] = one
+    return tuple(found.values())
+
+
+def _correlations(
+    asked: UncertaintyText | None, figures: Sequence[Uncertain], collector: Collector
+) -> dict[frozenset[str], float]:
+    """The stated coefficients by pairs of ids; faults where one has nothing to stand on."""
+    known = {figure.line.symbol for figure in figures}
+    found: dict[frozenset[str], float] = {}
+    for one in asked.correlations if asked is not None else ():
+        for symbol in (one.first, one.second):
+            if symbol not in known:
+                collector.add(
+                    "correlation-without-tolerance",
+                    one.place,
+                    f"`{symbol}` has no tolerance that could go together with another",
+                    found=symbol,
+                    expected="a tolerance on both givens",
+                )
+        found[frozenset((f"given/{one.first}", f"given/{one.second}"))] = one.coefficient
+    if (
+        found
+        and asked is not None
+        and not is_possible(correlation_matrix([figure.id for figure in figures], found))
+    ):
+        collector.add(
+            "correlation-impossible",
+            asked.correlations[0].place,
+            "these correlations cannot all hold together",
+            found="a matrix of coefficients that is not positive semidefinite",
+            expected="coefficients that agree with each other",
+        )
+    return found
+
+
+class _Assessment:
+    def __init__(
+        self,
+        solved: Solved,
+        chain: Chain,
+        figures: tuple[Uncertain, ...],
+        left_out: tuple[LeftOut, ...],
+        results: tuple[Measured, ...],
+        correlations: Correlations,
+        asked: UncertaintyText | None,
+    ):
+        self.solved, self.chain, self.figures, self.left_out = solved, chain, figures, left_out
+        self.results, self.correlations, self.asked = results, correlations, asked
+        self.inputs = chain.case_inputs("")
+        self.coverage = asked.coverage if asked is not None else USUAL_COVERAGE
+
+    def uncertainty(self) -> Uncertainty:
+        budgets = self._budgets()
+        stated = self.asked.correlations if self.asked is not None else ()
+        return Uncertainty(
+            self.coverage,
+            budgets,
+            self.left_out,
+            tuple(CorrelationRow(one.first, one.second, one.coefficient, one.source) for one in stated),
+            self._exact_allowances(),
+            self._sampling(budgets) if self.asked is not None else None,
+        )
+
+    def _named(self, name: str) -> Result:
+        return self.solved.base.results[name]
+
+    def _exact_allowances(self) -> tuple[str, ...]:
+        """Fouling terms that rest on no figure with a tolerance: an allowance gets none by itself."""
+        known = {figure.id for figure in self.figures}
+        steps = {step.id: step for step in self.chain.steps}
+
+        def rests_on(name: str) -> set[str]:
+            step = steps.get(name)
+            return {name} if step is None else set().union(*map(rests_on, step.inputs.values()))
+
+        return tuple(
+            element.name
+            for element in self.chain.elements
+            if isinstance(element, Layer)
+            and element.kind == "fouling"
+            and not rests_on(element.resistance) & known
+        )
+
+    # -- first order --------------------------------------------------------------------------------
+
+    def _budgets(self) -> tuple[Budget, ...]:
+        model = ChainModel(self.chain, self.inputs, self.results)
+        steps = {
+            condition: tuple(
+                dict.fromkeys(
+                    step for one in self.results for there, step in one.parts.values() if there == condition
+                )
+            )
+            for condition in model.conditions
+        }
+        solutions = self.solved.base.solutions
+        slopes = {
+            condition: derivatives(self.chain, self.inputs, condition, wanted, solutions[condition])
+            for condition, wanted in steps.items()
+        }
+        values = {condition: solutions[condition].values for condition in steps}
+        wide = wide_slopes(model.outputs, self.figures) if self.figures else {}
+        return tuple(
+            self._budget(one, one.slopes(values, slopes), wide.get(one.name, {})) for one in self.results
+        )
+
+    def _budget(self, one: Measured, slopes: dict[str, float], wide: dict[str, float]) -> Budget:
+        found = first_order(self.figures, slopes, self.correlations)
+        by_id = {figure.id: figure.line for figure in self.figures}
+        factor = coverage_factor(self.coverage, found.degrees)
+        over_widths = first_order(self.figures, wide, self.correlations).standard if wide else 0.0
+        result = self._named(one.name)
+        return Budget(
+            one.name,
+            result.title,
+            result.kind,
+            result.value,
+            tuple(
+                BudgetRow(by_id[line.id], line.slope, line.contribution, line.share) for line in found.lines
+            ),
+            found.standard,
+            factor,
+            factor * found.standard,
+            found.degrees,
+            over_widths,
+            is_nonlinear(found.standard, over_widths),
+        )
+
+    # -- samples ------------------------------------------------------------------------------------
+
+    def _sampling(self, budgets: tuple[Budget, ...]) -> Sampling | None:
+        assert self.asked is not None
+        statements, texts, not_sampled = self._statements()
+        model = ChainModel(self.chain, self.inputs, self.results, statements, limits=True)
+        drawn = [Drawn(figure.id, figure.distribution) for figure in self.figures]
+        if not drawn:
+            return None
+        found = propagate(model, drawn, self.coverage, self.asked.digits, self.correlations)
+        if found is None:
+            return None
+        return Sampling(
+            found.trials,
+            found.blocks,
+            found.block_size,
+            found.is_capped,
+            tuple(_compared(budget, found.intervals[budget.result]) for budget in budgets),
+            tuple(_chance(one, texts[one.id], found) for one in statements),
+            not_sampled,
+            found.trials - found.answered,
+            self._outside(model, found),
+            found.marks.get(OUTSIDE_ANY, 0),
+            GENERATOR,
+        )
+
+    def _statements(self) -> tuple[list[Statement], dict[str, tuple[str, bool]], tuple[str, ...]]:
+        """What is counted over the samples: every criterion that they can show, and a margin above zero.
+
+        With it the text and the verdict at the stated values, by id, and the criteria that they cannot show.
+        """
+        statements: list[Statement] = []
+        texts: dict[str, tuple[str, bool]] = {}
+        not_sampled = []
+        stated = {
+            f"criterion {place}": item for place, item in enumerate(self.chain.calculation.acceptance, 1)
+        }
+        for row in self.solved.base.criteria:
+            item = stated[row.id]
+            result = measured(self.chain, item.result)
+            if result is None:
+                not_sampled.append(row.that)
+                continue
+            statements.append(
+                Statement(row.id, result, item.operator, row.limit, self._limit_step(item.limit.symbol))
+            )
+            texts[row.id] = (row.that, row.met)
+        margin = measured(self.chain, MARGIN) if MARGIN in self.solved.base.results else None
+        if margin is not None:
+            statements.append(Statement(POSITIVE_MARGIN, margin, ">", 0.0))
+            texts[POSITIVE_MARGIN] = (POSITIVE_MARGIN, self._named(MARGIN).value > 0.0)
+        return statements, texts, tuple(not_sampled)
+
+    def _limit_step(self, symbol: str) -> str:
+        if not symbol:
+            return ""
+        return f"given/{symbol}" if symbol in self.chain.calculation.givens else f"derived/{symbol}"
+
+    def _outside(self, model: ChainModel, found: Propagated) -> tuple[OutsideRow, ...]:
+        """The limits that samples leave, each with its state at the stated values."""
+        rows: dict[str, OutsideRow] = {}
+        for one in model.limits:
+            count = found.marks.get(one.id, 0)
+            if not count or one.id in rows:
+                continue
+            nominal = evaluate_check(
+                one.check, self.solved.base.solutions[one.condition], "", self.chain.dimensions
+            )
+            rows[one.id] = OutsideRow(
+                one.check.id, one.condition, one.check.limit.level, count, nominal.state
+            )
+        return tuple(rows.values())
+
+
+def _compared(budget: Budget, found: Interval) -> SampledResult:
+    """The samples beside the budget: validated where both ends agree within the tolerance (JCGM 101, 8.1)."""
+    low = abs(budget.value - budget.expanded - found.low)
+    high = abs(budget.value + budget.expanded - found.high)
+    return SampledResult(
+        budget.result,
+        budget.title,
+        budget.kind,
+        found.mean,
+        found.standard,
+        found.low,
+        found.high,
+        found.spread,
+        found.tolerance,
+        found.aim,
+        low,
+        high,
+        max(low, high) <= found.tolerance,
+    )
+
+
+def _chance(statement: Statement, text: tuple[str, bool], found: Propagated) -> Chance:
+    share = found.marks[statement.id] / found.answered
+    deviation = math.sqrt(share * (1.0 - share) / found.answered)
+    return Chance(statement.id, text[0], text[1], share, deviation)

@@ -1,0 +1,117 @@
+"""Named results as quantities of a chain: which steps, in which condition, joined by which relation."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+
+from calcbook.chain.types import CLEAN, CONDITIONS, SERVICE, Chain
+from calcbook.formulas import Relation, evaluate, parse_expression, partial
+
+Array = np.ndarray
+Step = tuple[str, str]
+"""A condition and the id of a step in it."""
+
+# Results of a duty by the step that gives them, and the condition that it is taken in.
+DUTY_STEPS = {
+    "duty": ("duty/Q", SERVICE),
+    "LMTD": ("duty/LMTD", SERVICE),
+    "F": ("duty/F", SERVICE),
+    "area_service": ("duty/A required", SERVICE),
+    "area_clean": ("duty/A required", CLEAN),
+    "area_installed": ("duty/A installed", SERVICE),
+    "area_margin": ("duty/area margin", SERVICE),
+    "area_margin_clean": ("duty/area margin", CLEAN),
+    "U_required": ("duty/U required", SERVICE),
+    "effectiveness_service": ("duty/effectiveness", SERVICE),
+    "heat_flow_reached_service": ("duty/Q reached", SERVICE),
+}
+JOINED = {"cleanliness": "U_service/U_clean", "excess_surface": "U_clean/U_service - 1"}
+PLAIN = parse_expression("y")
+
+
+@dataclass(frozen=True, slots=True)
+class Measured:
+    """A result as a relation over steps of the chain; ``parts`` binds its symbols."""
+
+    name: str
+    relation: Relation
+    parts: Mapping[str, Step]
+
+    def value(self, solved: Mapping[str, Mapping[str, Array]]) -> Array:
+        """The result from the steps of every condition, on arrays."""
+        return evaluate(self.relation, self._arguments(solved))
+
+    def slopes(
+        self,
+        solved: Mapping[str, Mapping[str, Array]],
+        derivatives: Mapping[str, Mapping[str, Mapping[str, Array]]],
+    ) -> dict[str, float]:
+        """Slopes of the result in every input, from those of the steps by condition; for a single record."""
+        arguments = self._arguments(solved)
+        total: dict[str, float] = {}
+        for symbol, (condition, step) in self.parts.items():
+            outer = float(np.asarray(evaluate(partial(self.relation, symbol), arguments)).ravel()[0])
+            for name, slope in derivatives[condition].get(step, {}).items():
+                total[name] = total.get(name, 0.0) + outer * float(np.asarray(slope).ravel()[0])
+        return total
+
+    def _arguments(self, solved: Mapping[str, Mapping[str, Array]]) -> dict[str, Array]:
+        return {symbol: solved[condition][step] for symbol, (condition, step) in self.parts.items()}
+
+
+def measured(chain: Chain, name: str) -> Measured | None:
+    """A named result as steps of the chain; None for one that no step of the circuit gives."""
+    if name in JOINED:
+        parts = {f"U_{condition}": (condition, chain.results["U"]) for condition in CONDITIONS}
+        return Measured(name, parse_expression(JOINED[name]), parts)
+    step = _step(chain, name)
+    return Measured(name, PLAIN, {"y": step}) if step is not None else None
+
+
+def _step(chain: Chain, name: str) -> Step | None:
+    if name in DUTY_STEPS:
+        step, condition = DUTY_STEPS[name]
+        there = any(one.id == step for one in chain.circuit)
+        return (condition, step) if there else None
+    for condition in CONDITIONS:
+        for key, step in chain.results.items():
+            if name in _names(key, condition):
+                return condition, step
+    return _of_stream(chain, name)
+
+
+def _names(key: str, condition: str) -> tuple[str, ...]:
+    """The names of a result of the circuit in a condition, by its key there."""
+    if key in ("U", "UA"):
+        return (f"{key}_{condition}",)
+    if key in ("heat flux", "heat flow"):
+        return (f"{key.replace(' ', '_')}_{condition}",)
+    if key.startswith("U on "):
+        return (f"U_{condition}{key[1:]}",)
+    if key.startswith(("h ", "R ", "dT ")) and key != "R total":
+        return (f"{key} {condition}",)
+    return ()
+
+
+def _of_stream(chain: Chain, name: str) -> Step | None:
+    """Temperatures of the wetted surfaces, and speed and Reynolds number of a stream in service."""
+    for condition in CONDITIONS:
+        for side, group in (("inside", chain.inner), ("outside", chain.outer)):
+            if name == f"T {side} surface {condition}" and chain.has_temperatures:
+                return condition, group.surface_temperature
+    for group in (chain.inner, chain.outer):
+        for branch in group.branches:
+            state = chain.streams.get(branch.stream)
+            if state is None:
+                continue
+            steps = {step.id for candidate in branch.candidates for step in candidate.steps}
+            steps |= {step.id for step in (*chain.steps, *branch.choice_steps)}
+            if name == f"speed {branch.stream}":
+                own = state.flow if state.flow_kind == "speed" else f"{branch.name}/speed"
+                return (SERVICE, own) if own in steps or own in chain.inputs else None
+            if name == f"Re {branch.stream}" and f"{branch.name}/Re" in steps:
+                return SERVICE, f"{branch.name}/Re"
+    return None
