@@ -15,7 +15,7 @@ from calcbook.chain.fins import FinnedSide, check_finned_situation, lay_out_fins
 from calcbook.chain.growth import Grown, GrownDeposit, lay_out_growth, lay_out_thickness
 from calcbook.chain.petroleum import lay_out_cards
 from calcbook.chain.pressure import asked_symbols, lay_out_pressure_drop
-from calcbook.chain.scope import Scope, unnamed_kind
+from calcbook.chain.scope import Scope, is_empty_source, unnamed_kind
 from calcbook.chain.services import check_services
 from calcbook.chain.specified import SpecifiedFouling
 from calcbook.chain.streams import lay_out_stream
@@ -228,6 +228,15 @@ class _Builder:
         for case, changes in self.calculation.cases.items():
             for symbol, given in changes.items():
                 self.scope.check_source(given.value, f"case {case}/{symbol}")
+
+        stated = self.calculation.uncertainty
+        for one in stated.correlations if stated is not None else ():
+            if is_empty_source(one.source):
+                self.scope.open(
+                    f"correlation {one.first} {one.second}/source",
+                    "source",
+                    f"The correlation of {one.first} and {one.second} has no source.",
+                )
 
     def _typed_givens(self) -> dict[str, Input]:
         """Every given as an input of the chain, with the kind that its uses gave it."""

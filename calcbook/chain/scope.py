@@ -273,12 +273,17 @@ class Scope:
 
     def check_source(self, value: Value, name: str) -> None:
         """A literal that moves a result needs a source; a bare or empty one is an open item."""
-        if value.source.strip(" .").casefold() in EMPTY_SOURCES:
+        if is_empty_source(value.source):
             self.open(
                 f"{name}/source",
                 "source",
                 f"The value {value.text} ({name.replace('/', ', ')}) has no source.",
             )
+
+
+def is_empty_source(source: str) -> bool:
+    """Whether a source names nothing: absent, or a word that stands for one to come."""
+    return source.strip(" .").casefold() in EMPTY_SOURCES
 
 
 def unnamed_kind(symbol: str, dim: Dimension) -> QuantityKind:

@@ -14,6 +14,7 @@ from dataclasses import dataclass
 from calcbook.chain.outcome import CaseOutcome, Solved, StepRow
 from calcbook.record.numbers import in_report_unit, report_unit, unit_text, value_text
 from calcbook.record.rating_figures import rating_figures
+from calcbook.record.uncertainty_data import displayed_uncertainty
 
 MARK = b"calcbook-digest-1\0"
 RESULT_DIGITS = 5
@@ -83,6 +84,8 @@ def displayed(solved: Solved) -> dict[str, list[str]]:
         for name, value, kind in rating_figures(solved.rating):
             text = in_report_unit(value, kind, report, RESULT_DIGITS)
             shown[f"rating / {name}"] = [text, unit_text(report_unit(kind, report))]
+    if solved.uncertainty is not None:
+        shown.update(displayed_uncertainty(solved.uncertainty))
     return shown
 
 

@@ -3,20 +3,18 @@
 from __future__ import annotations
 
 import json
-import math
 
 from calcbook.chain.outcome import CaseOutcome, CheckResult, CriterionResult, Solved, StepRow, TermRow
 from calcbook.chain.rating_outcome import Rating
 from calcbook.chain.types import CONDITIONS, SERVICE, OpenItem
 from calcbook.formulas import Relation
 from calcbook.quantities import QuantityKind
+from calcbook.record.data import Data, rounded
 from calcbook.record.digest import Digest
 from calcbook.record.rating_figures import rating_figures
 from calcbook.record.software import Software
 from calcbook.record.steps import StepTexts
-
-DIGITS = 10
-Data = dict[str, object]
+from calcbook.record.uncertainty_data import uncertainty_data
 
 
 def results_text(solved: Solved, digest: Digest, software: Software) -> str:
@@ -52,15 +50,8 @@ def results_data(solved: Solved, digest: Digest, software: Software) -> Data:
         "assumptions": _assumptions(solved),
         "open_items": [_open_item(item) for item in solved.open_items],
         "cases": {case.name: _case(case) for case in solved.cases[1:]},
+        **({"uncertainty": uncertainty_data(solved.uncertainty)} if solved.uncertainty is not None else {}),
     }
-
-
-def rounded(value: object) -> object:
-    """A figure with 10 significant digits, a flag as it is, None for what is not known."""
-    if isinstance(value, bool):
-        return value
-    number = float(value)  # type: ignore[arg-type]
-    return float(f"{number:.{DIGITS}g}") if math.isfinite(number) else None
 
 
 def _figure(value: float, kind: QuantityKind) -> Data:

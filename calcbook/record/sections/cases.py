@@ -18,6 +18,7 @@ from calcbook.record.numbers import (
 from calcbook.record.page import Page, case_name, counted
 from calcbook.record.sections.duty import day_one_blocks
 from calcbook.record.sections.head import criterion_row
+from calcbook.record.sections.uncertainty import uncertainty
 from calcbook.record.sections.validity import verdict
 
 
@@ -33,7 +34,7 @@ def sensitivity(page: Page) -> list[Block]:
     )
     columns = ("Figure", "Meaning", "Step", f"Change of U, {unit_text(unit)}", "Relative")
     rows = tuple(_sensitivity_row(row, unit) for row in page.solved.sensitivity)
-    return [*blocks, Paragraph(words), Table(columns, rows), *_uncertainty(page)]
+    return [*blocks, Paragraph(words), Table(columns, rows), *uncertainty(page)]
 
 
 def _sensitivity_row(row: SensitivityRow, unit: str) -> tuple[str, ...]:
@@ -46,19 +47,6 @@ def _sensitivity_row(row: SensitivityRow, unit: str) -> tuple[str, ...]:
         number(in_unit(row.change, unit), CONCLUSION_DIGITS),
         percent(row.relative, 3),
     )
-
-
-def _uncertainty(page: Page) -> list[Block]:
-    """Tolerances without a budget are said, so that nobody reads one into the record."""
-    stated = [symbol for symbol, given in page.calculation.givens.items() if given.tolerance is not None]
-    if not stated:
-        return [Paragraph("No tolerance is stated; no uncertainty of U is given.")]
-    return [
-        Paragraph(
-            f"Tolerances are stated for {', '.join(map(written_name, stated))}; this record makes no budget"
-            " of uncertainty from them."
-        )
-    ]
 
 
 # --- cases ------------------------------------------------------------------------------------------

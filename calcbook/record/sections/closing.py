@@ -55,6 +55,10 @@ def _documents(page: Page) -> list[Block]:
             found.setdefault(state.fluid.text.source, []).append(f"properties of {state.fluid.text.name}")
     for criterion in page.calculation.acceptance:
         found.setdefault(criterion.source, []).append(criterion.text)
+    stated = page.calculation.uncertainty
+    for one in stated.correlations if stated is not None else ():
+        names = f"{written_name(one.first)} and {written_name(one.second)}"
+        found.setdefault(one.source, []).append(f"correlation of {names}")
     rows = tuple((source, "; ".join(names)) for source, names in found.items() if source)
     if not rows:
         return []

@@ -125,11 +125,15 @@ def _tolerance(given: Given) -> str:
     tolerance = given.tolerance
     if tolerance is None:
         return "none stated"
-    if tolerance.kind == "standard":
-        return f"standard {tolerance.text}"
-    if tolerance.kind == "expanded":
-        return f"expanded {tolerance.text}, k = {number(tolerance.factor)}"
-    return f"± {tolerance.text}"
+    words = {
+        "rectangular": f"± {tolerance.text}",
+        "triangular": f"± {tolerance.text}, triangular",
+        "standard": f"standard {tolerance.text}",
+        "expanded": f"expanded {tolerance.text}, k = {number(tolerance.factor)}",
+    }[tolerance.kind]
+    if math.isinf(tolerance.degrees):
+        return words
+    return f"{words}, {tolerance.degrees:.0f} degrees of freedom"
 
 
 # --- assumptions ------------------------------------------------------------------------------------

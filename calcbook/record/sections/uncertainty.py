@@ -1,0 +1,364 @@
+"""Uncertainty of the results: what is in it, a budget for each result, and the samples where the file asks."""
+
+from __future__ import annotations
+
+import math
+
+from calcbook.chain.uncertainty_outcome import Budget, BudgetRow, SampledResult, Sampling, Uncertainty
+from calcbook.formulas.names import written_name
+from calcbook.quantities import QuantityKind, in_unit
+from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Table
+from calcbook.record.numbers import NOT_KNOWN, fixed, number, percent, report_unit, unit_text
+from calcbook.record.page import Page
+
+STANDARD_DIGITS = 2
+SLOPE_DIGITS = 4
+FACTOR_PLACES = 3
+# Above this share, samples without an answer or outside a limit are a caution.
+MOST_UNSAID = 0.001
+NOT_SEPARABLE = "not separable"
+
+
+def uncertainty(page: Page) -> list[Block]:
+    """Budgets and samples, or why there are none."""
+    found = page.solved.uncertainty
+    heading = Heading(3, "Uncertainty")
+    if found is None:
+        return [heading, Paragraph("No tolerance is stated; no uncertainty of a result is given.")]
+    blocks: list[Block] = [heading, *_what_is_in_it(found), _summary(found, page)]
+    cautions = _cautions(found)
+    if cautions:
+        blocks.append(Bullets(cautions))
+    for budget in found.budgets:
+        blocks += _budget(budget, page)
+    return [*blocks, *_sampled(found, page)]
+
+
+# --- what it is made of -----------------------------------------------------------------------------
+
+
+def _what_is_in_it(found: Uncertainty) -> list[Block]:
+    words = (
+        "First-order propagation (JCGM 100:2008, 5.1.2) at the base case, from the tolerances of the givens and"
+        " the accuracy of the methods; slopes are those of the relations. The accuracy of a method is a factor B"
+        " around 1 on the film coefficient that its card gives, one for all terms of that card."
+    )
+    facts = [
+        "Figures without a tolerance count as exact, among them the properties of fluids and the conductivities"
+        " of material cards.",
+        *_allowances(found),
+        *(
+            f"{item.term}: the part of the method {item.card} is missing: {item.reason}."
+            for item in found.left_out
+        ),
+        *(
+            f"{written_name(one.first)} and {written_name(one.second)} go together with r ="
+            f" {number(one.coefficient, 4)} ({one.source or 'no source'})."
+            for one in found.correlations
+        ),
+    ]
+    return [Paragraph(words), Bullets(tuple(facts))]
+
+
+def _allowances(found: Uncertainty) -> list[str]:
+    if not found.exact_allowances:
+        return []
+    return [
+        f"No tolerance is stated for the fouling of {', '.join(found.exact_allowances)}: an allowance is an agreed"
+        " figure and gets none by itself."
+    ]
+
+
+def _summary(found: Uncertainty, page: Page) -> Table:
+    return Table(
+        (
+            "Result",
+            "Value",
+            "Unit",
+            "Standard uncertainty",
+            "Coverage factor k",
+            f"Expanded uncertainty, {_coverage(found)}{_of_inputs(found)}",
+            "Relative to the value",
+        ),
+        tuple(_summary_row(budget, page) for budget in found.budgets),
+    )
+
+
+def _of_inputs(found: Uncertainty) -> str:
+    """What heads an expanded uncertainty that lacks the part of a method."""
+    return ", of the stated parts alone" if found.left_out else ""
+
+
+def _coverage(found: Uncertainty) -> str:
+    return f"{number(100.0 * found.coverage, 4)} %"
+
+
+def _summary_row(budget: Budget, page: Page) -> tuple[str, ...]:
+    unit = _unit(budget.kind, page)
+    return (
+        budget.result,
+        beside(_value(budget.value, budget.kind, unit), in_unit(budget.standard, _step(unit))),
+        unit_text(unit),
+        number(in_unit(budget.standard, _step(unit)), STANDARD_DIGITS),
+        fixed(budget.factor, FACTOR_PLACES),
+        number(in_unit(budget.expanded, _step(unit)), STANDARD_DIGITS),
+        NOT_KNOWN if budget.kind.scale == "point" else percent(budget.relative),
+    )
+
+
+def _cautions(found: Uncertainty) -> tuple[str, ...]:
+    return tuple(
+        f"Caution: {budget.result} is not near a straight line over one standard uncertainty to either side"
+        f" ({_wide_words(budget)}); "
+        + (
+            "hold the budget against the samples below."
+            if found.sampling
+            else "samples (`uncertainty:`) show more."
+        )
+        for budget in found.budgets
+        if budget.is_nonlinear
+    )
+
+
+def _wide_words(budget: Budget) -> str:
+    if not math.isfinite(budget.wide_standard):
+        return "the circuit has no value there"
+    return f"slopes taken over them give {percent(budget.wide_standard / budget.standard - 1.0)} more"
+
+
+# --- budgets ----------------------------------------------------------------------------------------
+
+
+def _budget(budget: Budget, page: Page) -> list[Block]:
+    unit = _unit(budget.kind, page)
+    columns = (
+        "Figure",
+        "Meaning",
+        "Value",
+        "Standard uncertainty",
+        "Unit",
+        "Distribution",
+        "From",
+        f"Sensitivity, {unit_text(_step(unit))} per unit",
+        f"Contribution, {unit_text(_step(unit))}",
+        "Share of the variance",
+    )
+    heading = Heading(4, f"Budget of {budget.result}")
+    if not budget.rows:
+        return [heading, Paragraph("It depends on no figure with a tolerance.")]
+    # Rounded before it is ranked, so that contributions that are alike keep the order of the file.
+    rows = sorted(budget.rows, key=lambda row: -float(f"{abs(row.contribution):.9g}"))
+    lines: list[Block] = [heading, Table(columns, tuple(_budget_row(row, unit) for row in rows))]
+    if math.isfinite(budget.degrees):
+        lines.append(
+            Paragraph(
+                f"Effective degrees of freedom {number(budget.degrees, 3)} (JCGM 100:2008, G.4.1); k is that of"
+                f" the t law at {math.floor(budget.degrees)}."
+            )
+        )
+    return lines
+
+
+def _budget_row(row: BudgetRow, unit: str) -> tuple[str, ...]:
+    item = row.input
+    own = item.kind.unit
+    symbol = item.id.replace("factor/", "B of ") if item.is_method else written_name(item.symbol)
+    return (
+        symbol,
+        item.title,
+        number(item.value, 6),
+        number(item.standard, STANDARD_DIGITS),
+        unit_text(own),
+        item.distribution,
+        item.rule,
+        number(in_unit(row.slope, _step(unit)), SLOPE_DIGITS),
+        number(in_unit(row.contribution, _step(unit)), STANDARD_DIGITS),
+        NOT_SEPARABLE if math.isnan(row.share) else percent(row.share),
+    )
+
+
+# --- samples ----------------------------------------------------------------------------------------
+
+
+def _sampled(found: Uncertainty, page: Page) -> list[Block]:
+    if not page.calculation.uncertainty:
+        return []
+    heading = Heading(4, "Monte Carlo propagation")
+    samples = found.sampling
+    if samples is None:
+        words = (
+            "No figure is drawn: no tolerance and no accuracy of a method acts."
+            if not any(budget.rows for budget in found.budgets)
+            else "Fewer than half of the samples have an answer: no figure is made from the others."
+        )
+        return [heading, Paragraph(words)]
+    blocks: list[Block] = [
+        heading,
+        Paragraph(_how(samples)),
+        Table(
+            (
+                "Result",
+                "Mean",
+                "Unit",
+                "Standard uncertainty",
+                f"Interval of {_coverage(found)}",
+                "Interval of first order",
+                "Ends apart by",
+                "Tolerance",
+                "First order",
+            ),
+            tuple(
+                _sampled_row(one, budget, page)
+                for one, budget in zip(samples.results, found.budgets, strict=True)
+            ),
+        ),
+        Paragraph(
+            "First order is validated where both ends of its interval lie within the tolerance, half of the last"
+            " digit made sure of, of those of the samples (JCGM 101:2008, 8.1); otherwise the samples are to be"
+            " preferred."
+        ),
+    ]
+    return [*blocks, *_chances(samples), *_counts(samples)]
+
+
+def _how(samples: Sampling) -> str:
+    stop = (
+        f"stopped at the most that are drawn, {_whole(samples.trials)}, before every figure was steady"
+        if samples.is_capped
+        else f"stopped after {_whole(samples.trials)}, when twice the standard deviation of every figure over the blocks"
+        " was below a fifth of its tolerance"
+    )
+    return (
+        f"Samples (JCGM 101:2008, 7.9) in {samples.blocks} blocks of {_whole(samples.block_size)}, {stop}. The circuit is"
+        f" closed in each sample. Random numbers: {samples.generator}, one stream for each figure."
+    )
+
+
+def _sampled_row(one: SampledResult, budget: Budget, page: Page) -> tuple[str, ...]:
+    unit = _unit(one.kind, page)
+    standard = in_unit(one.standard, _step(unit))
+
+    def shown(value: float) -> str:
+        return beside(_value(value, one.kind, unit), standard)
+
+    low, high = (number(in_unit(part, _step(unit)), 2) for part in (one.low_difference, one.high_difference))
+    return (
+        one.result,
+        shown(one.mean),
+        unit_text(unit),
+        number(standard, STANDARD_DIGITS),
+        f"{shown(one.low)} to {shown(one.high)}",
+        f"{shown(budget.value - budget.expanded)} to {shown(budget.value + budget.expanded)}",
+        f"{low} and {high}",
+        number(in_unit(one.tolerance, _step(unit)), 1),
+        "validated" if one.is_validated else "not validated",
+    )
+
+
+def _chances(samples: Sampling) -> list[Block]:
+    if not samples.chances and not samples.not_sampled:
+        return []
+    answered = samples.trials - samples.unanswered
+    blocks: list[Block] = []
+    if samples.chances:
+        rows = tuple(
+            (
+                one.text,
+                "holds" if one.nominal else "does not hold",
+                _chance(one.probability, answered),
+                f"{number(100.0 * one.deviation, 2)} %",
+            )
+            for one in samples.chances
+        )
+        columns = (
+            "Criterion",
+            "At the stated values",
+            "Probability that it holds",
+            "Standard deviation of that",
+        )
+        blocks.append(Table(columns, rows))
+    if samples.not_sampled:
+        blocks.append(Paragraph(f"Not counted over the samples: {'; '.join(samples.not_sampled)}."))
+    return blocks
+
+
+def _chance(probability: float, answered: int) -> str:
+    """A probability in per cent; never a certainty, where the samples merely show no other case."""
+    if probability == 1.0:
+        return f"more than {fixed(100.0 * (1.0 - 3.0 / answered), 3)} %"
+    if probability == 0.0:
+        return f"less than {fixed(300.0 / answered, 3)} %"
+    return f"{fixed(100.0 * probability, 2)} %"
+
+
+def _counts(samples: Sampling) -> list[Block]:
+    """Samples without an answer and samples outside a limit, with a caution where they are many."""
+    words = (
+        f"{_caution(samples.unanswered, samples)}Samples without an answer: {_part(samples.unanswered, samples)}."
+        " They have no solution, a figure that cannot be, or lie outside a limit that stops; they are left out of"
+        " the figures above."
+    )
+    more = (
+        f"{_caution(samples.outside_any, samples)}Samples outside a range limit of a method or term:"
+        f" {_part(samples.outside_any, samples)}. They are counted in. Boiling, condensing and freezing at the wall"
+        " are not looked at in the samples."
+    )
+    blocks: list[Block] = [Bullets((words, more))]
+    if samples.outside:
+        columns = (
+            "Limit that samples leave",
+            "Condition",
+            "Level",
+            "At the stated values",
+            "Samples outside",
+        )
+        blocks.append(
+            Table(
+                columns,
+                tuple(
+                    (row.check, row.condition, row.level, row.nominal, _part(row.samples, samples))
+                    for row in samples.outside
+                ),
+            )
+        )
+    return blocks
+
+
+def _caution(count: int, samples: Sampling) -> str:
+    return "Caution: " if count > MOST_UNSAID * samples.trials else ""
+
+
+def _part(count: int, samples: Sampling) -> str:
+    return f"{_whole(count)} of {_whole(samples.trials)} ({percent(count / samples.trials, 2)})"
+
+
+def _whole(count: int) -> str:
+    """A whole number in groups of three."""
+    return number(float(count), len(str(count)))
+
+
+# --- units and digits -------------------------------------------------------------------------------
+
+
+def _unit(kind: QuantityKind, page: Page) -> str:
+    return report_unit(kind, page.calculation.report)
+
+
+def _step(unit: str) -> str:
+    """The unit of a difference of figures in this unit."""
+    return {"degC": "K", "degF": "degR"}.get(unit, unit)
+
+
+def _value(value: float, kind: QuantityKind, unit: str) -> float:
+    return in_unit(value, unit, point=kind.scale == "point")
+
+
+def beside(value: float, standard: float) -> str:
+    """A figure rounded where its standard uncertainty, of two digits, ends."""
+    if not math.isfinite(value) or not standard > 0.0:
+        return number(value)
+    end = math.floor(math.log10(standard)) - (STANDARD_DIGITS - 1)
+    if end < 0:
+        return fixed(value, -end)
+    digits = max(math.floor(math.log10(abs(value))) - end + 1, 1) if value else 1
+    return number(value, digits)

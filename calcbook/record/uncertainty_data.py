@@ -1,0 +1,114 @@
+"""The uncertainty of results as the results file and the digest hold it."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+from calcbook.chain.uncertainty_outcome import Budget, Chance, SampledResult, Sampling, Uncertainty
+from calcbook.record.data import Data, rounded
+
+
+def uncertainty_data(found: Uncertainty) -> Data:
+    """Budgets, what is missing in them, and samples; SI values, units beside."""
+    return {
+        "coverage": rounded(found.coverage),
+        "budgets": {budget.result: _budget(budget) for budget in found.budgets},
+        "methods_left_out": [
+            {"term": item.term, "card": item.card, "reason": item.reason} for item in found.left_out
+        ],
+        "correlations": [
+            {"between": [one.first, one.second], "r": rounded(one.coefficient), "source": one.source}
+            for one in found.correlations
+        ],
+        "samples": _samples(found.sampling) if found.sampling is not None else None,
+    }
+
+
+def displayed_uncertainty(found: Uncertainty) -> Iterator[tuple[str, list[str]]]:
+    """What the digest binds: standard and expanded uncertainties, intervals and probabilities, by stable id."""
+    for budget in found.budgets:
+        for name, value in (("standard", budget.standard), ("expanded", budget.expanded)):
+            yield f"uncertainty {budget.result} / {name}", [f"{value:.2g}", budget.kind.unit]
+    if found.sampling is None:
+        return
+    for one in found.sampling.results:
+        yield f"samples {one.result} / standard", [f"{one.standard:.2g}", one.kind.unit]
+        yield f"samples {one.result} / first order", [_verdict(one), ""]
+    for chance in found.sampling.chances:
+        yield f"samples {chance.id}", [f"{chance.probability:.4f}", "1"]
+
+
+def _budget(budget: Budget) -> Data:
+    return {
+        "value": rounded(budget.value),
+        "standard_uncertainty": rounded(budget.standard),
+        "coverage_factor": rounded(budget.factor),
+        "expanded_uncertainty": rounded(budget.expanded),
+        "effective_degrees_of_freedom": rounded(budget.degrees),
+        "unit": budget.kind.unit,
+        "nonlinear": budget.is_nonlinear,
+        "lines": [
+            {
+                "id": row.input.id,
+                "value": rounded(row.input.value),
+                "standard_uncertainty": rounded(row.input.standard),
+                "unit": row.input.kind.unit,
+                "distribution": row.input.distribution,
+                "sensitivity": rounded(row.slope),
+                "contribution": rounded(row.contribution),
+                "share": rounded(row.share),
+            }
+            for row in budget.rows
+        ],
+    }
+
+
+def _samples(found: Sampling) -> Data:
+    return {
+        "trials": found.trials,
+        "blocks": found.blocks,
+        "generator": found.generator,
+        "steady": not found.is_capped,
+        "results": {one.result: _sampled(one) for one in found.results},
+        "probabilities": [_chance(one) for one in found.chances],
+        "not_sampled": list(found.not_sampled),
+        "without_answer": found.unanswered,
+        "outside_a_range": found.outside_any,
+        "limits_left": [
+            {
+                "id": row.check,
+                "condition": row.condition,
+                "level": row.level,
+                "samples": row.samples,
+                "state": row.nominal,
+            }
+            for row in found.outside
+        ],
+    }
+
+
+def _sampled(one: SampledResult) -> Data:
+    return {
+        "mean": rounded(one.mean),
+        "standard_uncertainty": rounded(one.standard),
+        "low": rounded(one.low),
+        "high": rounded(one.high),
+        "unit": one.kind.unit,
+        "tolerance": rounded(one.tolerance),
+        "first_order": _verdict(one),
+    }
+
+
+def _verdict(one: SampledResult) -> str:
+    """Whether the samples bear the budget out."""
+    return "validated" if one.is_validated else "not validated"
+
+
+def _chance(one: Chance) -> Data:
+    return {
+        "id": one.id,
+        "that": one.text,
+        "holds_at_stated_values": one.nominal,
+        "probability": rounded(one.probability),
+        "standard_deviation": rounded(one.deviation),
+    }
