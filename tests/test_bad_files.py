@@ -70,7 +70,16 @@ PROGRAMS = {
     "supercritical",  # an open item of the record
 }
 # The rooms whose faults a single file can show.
-ROOMS = ("documents.py", "quantities.py", "calcfile", "chain", "formulas", "properties", "library")
+ROOMS = (
+    "documents.py",
+    "quantities.py",
+    "calcfile",
+    "chain",
+    "formulas",
+    "properties",
+    "library",
+    "uncertainty",
+)
 MADE_OF_PARTS = {"no-viscosity-model", "no-conductivity-model"}  # a property's name stands within the code
 
 

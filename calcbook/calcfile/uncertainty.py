@@ -95,7 +95,7 @@ def _coverage(node: Scalar | None, collector: Collector) -> float:
             node.place,
             "this is no coverage probability",
             found=shown(node.text),
-            expected=f"a share from {LOWEST_COVERAGE:.0%} to {HIGHEST_COVERAGE:.1%}, such as 95 %",
+            expected="a share from 50 % to 99.9 %, such as 95 %",
         )
         return USUAL_COVERAGE
     return quantity.value

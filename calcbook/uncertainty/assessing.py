@@ -192,7 +192,7 @@ class _Assessment:
     # -- first order --------------------------------------------------------------------------------
 
     def _budgets(self) -> tuple[Budget, ...]:
-        model = ChainModel(self.chain, self.inputs, self.results)
+        model = ChainModel(self.chain, self.solved.base.solutions, self.results)
         steps = {
             condition: tuple(
                 dict.fromkeys(
@@ -239,7 +239,7 @@ class _Assessment:
     def _sampling(self, budgets: tuple[Budget, ...]) -> Sampling | None:
         assert self.asked is not None
         statements, texts, not_sampled = self._statements()
-        model = ChainModel(self.chain, self.inputs, self.results, statements, limits=True)
+        model = ChainModel(self.chain, self.solved.base.solutions, self.results, statements, limits=True)
         drawn = [Drawn(figure.id, figure.distribution) for figure in self.figures]
         if not drawn:
             return None

@@ -97,7 +97,7 @@ def _stated(
         collector.add(
             "tolerance-beyond-value",
             tolerance.place,
-            f"the tolerance of `{given.symbol}` takes it below what it can be: a {item.kind.name} is {must}",
+            f"the tolerance of `{given.symbol}` takes it below what it can be: its {item.kind.name} is {must}",
             found=f"{given.value.text} with {tolerance.text}",
             expected="a tolerance smaller than the value",
         )

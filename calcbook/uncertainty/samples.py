@@ -7,9 +7,11 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from calcbook.chain.about_state import about_state
 from calcbook.chain.solve import Solution, solve
 from calcbook.chain.types import Branch, Chain, ChainCheck, Layer
 from calcbook.formulas import evaluate
+from calcbook.properties import FluidAtPressure
 from calcbook.uncertainty.figures import has_floor
 from calcbook.uncertainty.measured import Measured
 from calcbook.uncertainty.sampling import Sampled
@@ -98,19 +100,54 @@ def _is_known(chain: Chain, one: Watched) -> bool:
     return not any(isinstance(value, float) and np.isnan(value) for value in constants)
 
 
+@dataclass(frozen=True, slots=True)
+class Phase:
+    """The saturation temperature that the bulk of a stream must not pass, and the side it stands on."""
+
+    temperature: str
+    pressure: str
+    line: FluidAtPressure
+    is_liquid: bool
+
+    def holds(self, values: Mapping[str, Array]) -> Array:
+        """The samples whose stream has the phase that it has at the stated figures."""
+        boiling = self.line.boiling_temperature(values[self.pressure], outside="nan")
+        temperature = values[self.temperature]
+        passed = temperature >= boiling if self.is_liquid else temperature <= boiling
+        return np.asarray(~passed)
+
+
+def phases(chain: Chain, solution: Solution) -> tuple[Phase, ...]:
+    """The phases to be kept: of streams with a pressure and a vapour pressure, off their saturation line."""
+    found = []
+    for state in chain.streams.values():
+        if not state.pressure or state.saturation or state.fluid.text.kind != "name":
+            continue
+        here = state.fluid.state(solution.number(state.pressure), None, state.phase)
+        if here.saturation_temperature() is None:
+            continue
+        is_liquid = (state.phase or here.phase_at(solution.number(state.temperature))) == "liquid"
+        line = state.fluid.state(None, None, "liquid" if is_liquid else "gas")
+        found.append(Phase(state.temperature, state.pressure, line, is_liquid))
+    return tuple(found)
+
+
 class ChainModel:
     """One chain as a model: solves the conditions that its results need, a batch at a time."""
 
     def __init__(
         self,
         chain: Chain,
-        inputs: Mapping[str, Array],
+        base: Mapping[str, Solution],
         results: Sequence[Measured],
         statements: Sequence[Statement] = (),
         limits: bool = False,
     ):
-        self.chain = chain
-        self.inputs = inputs
+        """``base`` are the solutions of the stated figures by condition."""
+        first = next(iter(base.values()))
+        self.chain = about_state(chain, first.values)
+        self.phases = phases(chain, first)
+        self.inputs = chain.case_inputs("")
         self.results = tuple(results)
         self.statements = tuple(statements)
         wanted = (*results, *(statement.result for statement in statements))
@@ -124,6 +161,7 @@ class ChainModel:
             *(step for one in wanted for _, step in one.parts.values()),
             *(statement.limit_step for statement in statements if statement.limit_step),
             *(name for one in self.limits for name in one.needs),
+            *(name for one in self.phases for name in (one.temperature, one.pressure)),
         }
 
     def outputs(self, drawn: Mapping[str, Array]) -> dict[str, Array]:
@@ -150,6 +188,8 @@ class ChainModel:
         }
         for solution in solutions.values():
             possible &= solution.converged
+            for phase in self.phases:
+                possible &= phase.holds(solution.values)
         return self._sampled(solutions, possible, size)
 
     def _sampled(self, solutions: Mapping[str, Solution], possible: Array, size: int) -> Sampled:

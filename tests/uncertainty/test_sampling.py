@@ -181,7 +181,7 @@ def test_the_stream_of_a_figure_is_fixed() -> None:
 
 def test_shares_are_even() -> None:
     values = np.sort(shares("a", 0, 100_000))
-    assert 0.0 < values[0] and values[-1] < 1.0
+    assert values[0] > 0.0 and values[-1] < 1.0
     # Kolmogorov's distance is below 1.95/sqrt(N) in 999 of 1000 cases.
     assert np.abs(values - (np.arange(100_000) + 0.5) / 100_000).max() < 1.95 / math.sqrt(100_000)
 

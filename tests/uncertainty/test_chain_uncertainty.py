@@ -1,0 +1,303 @@
+"""The uncertainty of whole calculations: closed forms, methods' factors, chances, counts, and the record."""
+
+from __future__ import annotations
+
+import math
+from statistics import NormalDist
+
+import numpy as np
+import pytest
+from uncertain_calculations import (
+    HEATED,
+    STATED,
+    house_method,
+    house_situation,
+    plane_between,
+    solved,
+    with_tolerance,
+)
+
+from calcbook.chain.factors import with_factors
+from calcbook.chain.solve import solve
+from calcbook.interface import record_text
+from calcbook.uncertainty.measured import measured
+from calcbook.uncertainty.samples import ChainModel
+from calcbook.uncertainty.sampling import propagate
+
+SAMPLED = "uncertainty:\n  of: [{}]\n"
+K95 = 1.959964
+
+
+TRIAL_LAW = house_method(
+    "trial-law",
+    "h = c + 0*(T_s - T_b)*e",
+    {"c": "500 W/(m^2 K)", "e": "1 W/(m^2 K^2)"},
+    points=(("T_s: 350, T_b: 340", 500.0), ("T_s: 320, T_b: 340", 500.0)),
+)
+
+
+def budget_of(found, result: str):
+    return next(one for one in found.uncertainty.budgets if one.result == result)
+
+
+def sampled_of(found, result: str):
+    return next(one for one in found.uncertainty.sampling.results if one.result == result)
+
+
+# --- first order against closed forms ---------------------------------------------------------------
+
+
+def test_stated_coefficients_in_closed_form(tmp_path) -> None:
+    body = with_tolerance(
+        STATED,
+        h_i="10 %",
+        h_o="{triangular: 300 W/(m^2 K)}",
+        R_fi="{standard: 0.00002 m^2 K/W}",
+        k_w="{expanded: 8 %, k: 2}",
+    )
+    found = solved(tmp_path, body)
+    d_i, d_o, k, h_i, h_o, r_i, r_o = 0.01483, 0.01905, 16.0, 5000.0, 1500.0, 1.8e-4, 1.8e-4
+    ratio = d_o / d_i
+    wall = d_o * math.log(d_o / d_i) / (2.0 * k)
+    u = 1.0 / (ratio * (1.0 / h_i + r_i) + wall + r_o + 1.0 / h_o)
+    expected = {
+        "given/h_i": u**2 * ratio / h_i**2 * 0.10 * h_i / math.sqrt(3.0),
+        "given/h_o": u**2 / h_o**2 * 300.0 / math.sqrt(6.0),
+        "given/R_fi": -(u**2) * ratio * 2e-5,
+        "given/k_w": u**2 * wall / k * 0.04 * k,
+    }
+    budget = budget_of(found, "U_service")
+    assert budget.value == pytest.approx(u, rel=1e-12)
+    assert {row.input.id: row.contribution for row in budget.rows} == pytest.approx(expected, rel=1e-9)
+    standard = math.sqrt(sum(part**2 for part in expected.values()))
+    assert budget.standard == pytest.approx(standard, rel=1e-9)
+    assert budget.expanded == pytest.approx(K95 * standard, rel=1e-6)
+    assert sum(row.share for row in budget.rows) == pytest.approx(1.0, rel=1e-12)
+    # Clean, the deposit is not there: its tolerance is no line of that budget.
+    assert "given/R_fi" not in {row.input.id for row in budget_of(found, "U_clean").rows}
+
+
+def test_cleanliness_follows_both_conditions(tmp_path) -> None:
+    body = with_tolerance(STATED, h_o="10 %")
+    found = solved(tmp_path, body, SAMPLED.format("cleanliness"))
+    base = found.base.results
+    clean, service = base["U_clean"].value, base["U_service"].value
+    # Both coefficients move with 1/h_o: d(U_s/U_c) = (U_s/U_c)·(U_s - U_c)/h_o² · dh_o.
+    slope = service / clean * (service - clean) / 1500.0**2
+    budget = budget_of(found, "cleanliness")
+    assert budget.rows[0].slope == pytest.approx(slope, rel=1e-9)
+
+
+def test_without_a_tolerance_there_is_no_uncertainty(tmp_path) -> None:
+    found = solved(tmp_path, STATED)
+    assert found.uncertainty is None
+    assert "No tolerance is stated; no uncertainty of a result is given." in record_text(found)
+
+
+# --- first order against samples --------------------------------------------------------------------
+
+
+def test_a_linear_chain_is_validated(tmp_path) -> None:
+    body = with_tolerance(HEATED, T_i="{standard: 0.8 K}", T_o="{standard: 0.6 K}")
+    found = solved(tmp_path, body, SAMPLED.format("heat_flow_service"))
+    conductance = found.base.results["UA_service"].value
+    budget, samples = (one(found, "heat_flow_service") for one in (budget_of, sampled_of))
+    assert budget.standard == pytest.approx(conductance * 1.0, rel=1e-9)
+    assert not budget.is_nonlinear
+    assert samples.is_validated
+    answered = found.uncertainty.sampling.trials
+    assert samples.standard == pytest.approx(budget.standard, rel=3.0 / math.sqrt(2.0 * answered))
+    assert samples.mean == pytest.approx(budget.value, abs=3.0 * budget.standard / math.sqrt(answered))
+
+
+@pytest.mark.parametrize("r", [-0.9, 0.5, 1.0])
+def test_correlated_temperatures_in_closed_form(tmp_path, r: float) -> None:
+    body = with_tolerance(HEATED, T_i="{standard: 0.8 K}", T_o="{standard: 0.6 K}")
+    more = SAMPLED.format("heat_flow_service")
+    more += f"  correlation:\n    - {{between: [T_o, T_i], r: {r}, source: one transmitter}}\n"
+    found = solved(tmp_path, body, more)
+    conductance = found.base.results["UA_service"].value
+    expected = conductance * math.sqrt(0.8**2 + 0.6**2 - 2.0 * r * 0.8 * 0.6)
+    budget, samples = (one(found, "heat_flow_service") for one in (budget_of, sampled_of))
+    assert budget.standard == pytest.approx(expected, rel=1e-9)
+    assert samples.standard == pytest.approx(
+        expected, rel=3.0 / math.sqrt(2.0 * found.uncertainty.sampling.trials)
+    )
+    assert all(math.isnan(row.share) for row in budget.rows)
+    assert "not separable" in record_text(found)
+
+
+def test_the_chance_of_a_criterion(tmp_path) -> None:
+    body = with_tolerance(HEATED, T_i="{standard: 1 K}")
+    plain = solved(tmp_path, body)
+    flow, conductance = (plain.base.results[name].value for name in ("heat_flow_service", "UA_service"))
+    limit = f"acceptance:\n  - {{that: heat_flow_service >= {flow - conductance:.6f} W, source: test}}\n"
+    found = solved(tmp_path, body, SAMPLED.format("U_service, heat_flow_service") + limit)
+    chance = found.uncertainty.sampling.chances[0]
+    expected = NormalDist().cdf(1.0)  # one standard uncertainty below the value
+    assert chance.nominal
+    assert chance.probability == pytest.approx(expected, abs=3.0 * chance.deviation)
+    assert chance.deviation == pytest.approx(
+        math.sqrt(expected * (1.0 - expected) / found.uncertainty.sampling.trials), rel=0.05
+    )
+
+
+def test_a_limit_that_is_itself_uncertain(tmp_path) -> None:
+    """P(U >= U_lim) with U_lim = U nominal and its own normal tolerance: one half."""
+    value = solved(tmp_path, STATED).base.results["U_service"].value
+    body = with_tolerance(STATED, h_i="1 %").replace(
+        "givens:\n",
+        f"givens:\n  U_lim: {{value: {value:.9f} W/(m^2 K), is: limit, source: test,"
+        " tolerance: {standard: 5 %}}\n",
+    )
+    more = SAMPLED.format("U_service") + "acceptance:\n  - {that: U_service >= U_lim, source: test}\n"
+    chance = solved(tmp_path, body, more).uncertainty.sampling.chances[0]
+    assert chance.probability == pytest.approx(0.5, abs=4.0 * chance.deviation)
+
+
+def test_few_readings_widen_the_interval(tmp_path) -> None:
+    body = with_tolerance(HEATED, T_i="{standard: 1 K, degrees of freedom: 4}")
+    found = solved(tmp_path, body, SAMPLED.format("heat_flow_service"))
+    budget, samples = (one(found, "heat_flow_service") for one in (budget_of, sampled_of))
+    assert budget.degrees == pytest.approx(4.0)
+    assert budget.factor == pytest.approx(2.776, abs=5e-4)  # JCGM 100:2008, table G.2: t_95(4) = 2.78
+    assert samples.is_validated
+    # The law itself: variance of t with 4 degrees of freedom is 2 (tails so heavy that 5 % must do).
+    assert samples.standard == pytest.approx(budget.standard * math.sqrt(2.0), rel=0.05)
+
+
+# --- factors of methods -----------------------------------------------------------------------------
+
+FLOW = """\
+givens:
+  d_i: {value: 15.75 mm, is: bore, source: test}
+  d_o: {value: 19.05 mm, is: outside diameter, source: test}
+  L: {value: 4.88 m, is: length, source: test}
+  N: {value: 62, is: tubes, source: test}
+  m_hot: {value: MASS kg/s, is: flow, source: test}
+  T_hot: {value: 74 degC, is: hot, source: test}
+  T_cold: {value: 31 degC, is: cold, source: test}
+  h_o: {value: 5200 W/(m^2 K), is: outside coefficient, source: test}
+  k_w: {value: 16 W/(m K), is: conductivity, source: test}
+streams:
+  hot: {fluid: water, temperature: T_hot, pressure: {value: 4 bara, source: test}, flow: m_hot}
+geometry: {shape: tube, inside diameter: d_i, outside diameter: d_o, length: L, parallel: N}
+resistances:
+  - {name: tube film, kind: film, stream: hot, situation: inside-tube, method: dittus-boelter-mcadams}
+  - {name: wall, kind: wall, conductivity: k_w}
+  - {name: shell film, kind: film, coefficient: h_o, on: outside, temperature: T_cold}
+report: {U on: outside}
+"""
+
+
+def test_the_factor_of_a_method_in_closed_form(tmp_path) -> None:
+    """Dittus and Boelter's equation takes no surface temperature: U = 1/(R + d_o/(d_i·B·h))."""
+    found = solved(tmp_path, with_tolerance(FLOW.replace("MASS", "18.2"), h_o="10 %"))
+    budget = budget_of(found, "U_service")
+    row = next(row for row in budget.rows if row.input.is_method)
+    assert row.input.id == "factor/dittus-boelter-mcadams"
+    h, u = (found.base.results[name].value for name in ("h tube film service", "U_service"))
+    assert row.slope == pytest.approx(u**2 * (19.05 / 15.75) / h, rel=1e-9)
+    assert row.input.standard == pytest.approx(0.25 / K95, rel=1e-6)  # "within 25 %, most data"
+
+
+def test_factors_of_one_change_nothing(tmp_path) -> None:
+    chain = solved(tmp_path, FLOW.replace("MASS", "18.2")).chain
+    plain = solve(chain, chain.case_inputs(""), "service")
+    factored = with_factors(chain)
+    other = solve(factored, factored.case_inputs(""), "service")
+    assert plain.number(chain.results["U"]) == other.number(chain.results["U"])
+
+
+def test_two_terms_of_one_card_have_one_factor(tmp_path) -> None:
+    """Both films by one card: h_1 = h_2 = 500, U = 1/(2/(B·h) + t/k), so dU/dB = U²·2/h."""
+    situation = house_situation("trial-film", "- {use: trial-law, because: the only one}", "trial-law")
+    law = TRIAL_LAW.replace(
+        "assumes:",
+        "accuracy: {within: 20 %, coverage: most data, stated by: test, standing: common practice}\nassumes:",
+    )
+    body = with_tolerance(plane_between("trial-film", "trial-film"), t="5 %")
+    found = solved(tmp_path, body, cards={"trial-film": situation, "trial-law": law})
+    rows = [row for row in budget_of(found, "U_service").rows if row.input.is_method]
+    assert [row.input.id for row in rows] == ["factor/trial-law"]
+    u = found.base.results["U_service"].value
+    assert u == pytest.approx(1.0 / (2.0 / 500.0 + 0.002 / 20.0), rel=1e-9)
+    assert rows[0].slope == pytest.approx(u**2 * 2.0 / 500.0, rel=1e-9)
+
+
+def test_a_card_without_accuracy_is_said(tmp_path) -> None:
+    situation = house_situation("trial-film", "- {use: trial-law, because: the only one}", "trial-law")
+    law = TRIAL_LAW
+    body = with_tolerance(plane_between("trial-film", "trial-film"), t="5 %")
+    found = solved(tmp_path, body, cards={"trial-film": situation, "trial-law": law})
+    text = record_text(found)
+    assert not any(row.input.is_method for row in budget_of(found, "U_service").rows)
+    assert "hot film: the part of the method trial-law is missing: its card states no accuracy." in text
+    assert "Expanded uncertainty, 95 %, of the stated parts alone" in text
+
+
+# --- samples that leave a range or have no answer ---------------------------------------------------
+
+
+def test_samples_that_leave_the_range_of_a_method_are_counted(tmp_path) -> None:
+    """Re is proportional to the flow: with Re 2 % above 10 000 and ± 10 % of flow, 4/10 of an even law lie below."""
+    at_one = solved(tmp_path, FLOW.replace("MASS", "1.0")).base.results["Re hot"].value
+    body = with_tolerance(FLOW.replace("MASS", f"{1.02 * 1e4 / at_one:.12f}"), m_hot="10 %")
+    found = solved(tmp_path, body, SAMPLED.format("U_service"))
+    samples = found.uncertainty.sampling
+    row = next(row for row in samples.outside if row.check.endswith("turbulent"))
+    expected = 0.5 - (1.0 - 1.0 / 1.02) / 0.2
+    assert row.samples / samples.trials == pytest.approx(
+        expected, abs=3.0 * math.sqrt(expected * (1 - expected) / samples.trials)
+    )
+    assert row.nominal == "within" and samples.outside_any >= row.samples
+    assert "Caution: Samples outside a range limit of a method or term:" in record_text(found)
+
+
+def test_samples_above_the_boiling_point_have_no_answer(tmp_path) -> None:
+    body = FLOW.replace("MASS", "18.2").replace("4 bara", "1.01325 bara").replace("74 degC", "98 degC")
+    found = solved(tmp_path, with_tolerance(body, T_hot="4 K"), SAMPLED.format("U_service"))
+    samples = found.uncertainty.sampling
+    # Water boils at 99.97 °C there (IAPWS-95): 2.03 of the 8 K of an even law lie above it.
+    assert samples.unanswered / samples.trials == pytest.approx(2.03 / 8.0, abs=0.01)
+    assert "Caution: Samples without an answer:" in record_text(found)
+
+
+# --- one answer -------------------------------------------------------------------------------------
+
+
+def test_the_record_is_the_same_each_time_and_however_blocks_are_joined(tmp_path) -> None:
+    body = with_tolerance(FLOW.replace("MASS", "18.2"), m_hot="5 %", h_o="10 %", T_hot="1 K")
+    more = SAMPLED.format("U_service, U_clean")
+    found = solved(tmp_path, body, more)
+    assert record_text(found) == record_text(solved(tmp_path, body, more))
+    chain = with_factors(found.chain)
+    from calcbook.faults import Collector
+    from calcbook.uncertainty.figures import method_figures, stated_figures
+    from calcbook.uncertainty.sampling import Drawn
+
+    factors, _ = method_figures(chain, found.base.solutions)
+    drawn = [Drawn(one.id, one.distribution) for one in (*stated_figures(chain, Collector()), *factors)]
+    results = [measured(chain, name) for name in ("U_service", "U_clean")]
+    model = ChainModel(chain, found.base.solutions, [one for one in results if one is not None])
+    several = [propagate(model, drawn, 0.95, 1, together=count) for count in (1, 8)]
+    assert several[0] == several[1]
+    assert several[0] is not None
+    assert several[0].intervals["U_service"].mean == sampled_of(found, "U_service").mean
+
+
+def test_every_result_that_is_propagated_is_the_result(tmp_path) -> None:
+    found = solved(tmp_path, FLOW.replace("MASS", "18.2"))
+    chain = found.chain
+    values = {condition: one.values for condition, one in found.base.solutions.items()}
+    names = [name for name in found.base.results if measured(chain, name) is not None]
+    for name in names:
+        one = measured(chain, name)
+        assert one is not None
+        assert float(np.asarray(one.value(values)).ravel()[0]) == pytest.approx(
+            found.base.results[name].value, rel=1e-15
+        ), name
+    assert {"U_service", "cleanliness", "excess_surface", "heat_flux_clean", "speed hot", "Re hot"} <= set(
+        names
+    )
+    assert {"h tube film clean", "R wall service", "T inside surface service", "dT hot service"} <= set(names)
