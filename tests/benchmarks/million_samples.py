@@ -24,6 +24,8 @@ from calcbook.library import load_material
 from calcbook.properties import pure
 
 CLOSED = 1e-13
+# Where it is drawn, the factor of the method on the film coefficient.
+FACTOR = "factor/gnielinski-1976"
 
 
 def drawn(base: dict[str, np.ndarray], count: int, names: tuple[str, ...]) -> dict[str, np.ndarray]:
@@ -76,6 +78,7 @@ class ByHand:
             * pr
             / (1 + 12.7 * np.sqrt(f / 8) * (pr ** (2 / 3) - 1))
             * (1 + (d_i / length) ** (2 / 3))
+            * x.get(FACTOR, 1.0)
         )
         outer = x["given/R_fo"] + 1 / x["given/h_o"]
         surface = hot - (hot - cold) / 3
