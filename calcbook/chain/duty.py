@@ -671,3 +671,12 @@ def duty_results(
         for name, key, kind, title in table:
             if key in chain.results:
                 put(name, solutions[condition].number(chain.results[key]), kind, title)
+
+
+def duty_step(chain: Chain, name: str) -> tuple[str, str] | None:
+    """The condition and the id of the step that a result of the duty is taken from; None for another name."""
+    for condition, table in ((SERVICE, _RESULTS), (CLEAN, _CLEAN_RESULTS)):
+        for result, key, *_ in table:
+            if result == name and key in chain.results:
+                return condition, chain.results[key]
+    return None

@@ -294,17 +294,18 @@ class _Assessment:
 
     def _outside(self, model: ChainModel, found: Propagated) -> tuple[OutsideRow, ...]:
         """The limits that samples leave, each with its state at the stated values."""
-        rows: dict[str, OutsideRow] = {}
-        for one in model.limits:
+        rows: dict[tuple[str, int, str], OutsideRow] = {}
+        for one in {one.id: one for one in model.limits}.values():
             count = found.marks.get(one.id, 0)
-            if not count or one.id in rows:
+            if not count:
                 continue
             nominal = evaluate_check(
                 one.check, self.solved.base.solutions[one.condition], "", self.chain.dimensions
             )
-            rows[one.id] = OutsideRow(
-                one.check.id, one.condition, one.check.limit.level, count, nominal.state
-            )
+            key = (one.check.id, count, nominal.state)
+            # What has nothing to do with deposits is left by the same samples in both conditions: one row.
+            where = f"{rows[key].condition} and {one.condition}" if key in rows else one.condition
+            rows[key] = OutsideRow(one.check.id, where, one.check.limit.level, count, nominal.state)
         return tuple(rows.values())
 
 

@@ -7,27 +7,14 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from calcbook.chain.types import CLEAN, CONDITIONS, SERVICE, Chain
+from calcbook.chain.duty import duty_step
+from calcbook.chain.types import CONDITIONS, SERVICE, Chain
 from calcbook.formulas import Relation, evaluate, parse_expression, partial
 
 Array = np.ndarray
 Step = tuple[str, str]
 """A condition and the id of a step in it."""
 
-# Results of a duty by the step that gives them, and the condition that it is taken in.
-DUTY_STEPS = {
-    "duty": ("duty/Q", SERVICE),
-    "LMTD": ("duty/LMTD", SERVICE),
-    "F": ("duty/F", SERVICE),
-    "area_service": ("duty/A required", SERVICE),
-    "area_clean": ("duty/A required", CLEAN),
-    "area_installed": ("duty/A installed", SERVICE),
-    "area_margin": ("duty/area margin", SERVICE),
-    "area_margin_clean": ("duty/area margin", CLEAN),
-    "U_required": ("duty/U required", SERVICE),
-    "effectiveness_service": ("duty/effectiveness", SERVICE),
-    "heat_flow_reached_service": ("duty/Q reached", SERVICE),
-}
 JOINED = {"cleanliness": "U_service/U_clean", "excess_surface": "U_clean/U_service - 1"}
 PLAIN = parse_expression("y")
 
@@ -72,10 +59,9 @@ def measured(chain: Chain, name: str) -> Measured | None:
 
 
 def _step(chain: Chain, name: str) -> Step | None:
-    if name in DUTY_STEPS:
-        step, condition = DUTY_STEPS[name]
-        there = any(one.id == step for one in chain.circuit)
-        return (condition, step) if there else None
+    of_duty = duty_step(chain, name)
+    if of_duty is not None:
+        return of_duty
     for condition in CONDITIONS:
         for key, step in chain.results.items():
             if name in _names(key, condition):

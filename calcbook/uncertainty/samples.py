@@ -8,7 +8,8 @@ from dataclasses import dataclass
 import numpy as np
 
 from calcbook.chain.about_state import about_state
-from calcbook.chain.solve import Solution, solve
+from calcbook.chain.completing import completed
+from calcbook.chain.solve import Solution, closed
 from calcbook.chain.types import Branch, Chain, ChainCheck, Layer
 from calcbook.formulas import evaluate
 from calcbook.properties import FluidAtPressure
@@ -183,8 +184,9 @@ class ChainModel:
                 name: np.where(possible, value, self.chain.inputs[name].value) if name in drawn else value
                 for name, value in inputs.items()
             }
+        whole = completed(self.chain, inputs)
         solutions = {
-            condition: solve(self.chain, inputs, condition, keep=self.keep) for condition in self.conditions
+            condition: closed(self.chain, whole, condition, keep=self.keep) for condition in self.conditions
         }
         for solution in solutions.values():
             possible &= solution.converged

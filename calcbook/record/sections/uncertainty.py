@@ -139,8 +139,8 @@ def _budget(budget: Budget, page: Page) -> list[Block]:
         "Unit",
         "Distribution",
         "From",
-        f"Sensitivity, {unit_text(_step(unit))} per unit",
-        f"Contribution, {unit_text(_step(unit))}",
+        f"Sensitivity{_of_unit(unit)} per unit of the figure",
+        f"Contribution{_of_unit(unit)}",
         "Share of the variance",
     )
     heading = Heading(4, f"Budget of {budget.result}")
@@ -266,7 +266,7 @@ def _chances(samples: Sampling) -> list[Block]:
                 one.text,
                 "holds" if one.nominal else "does not hold",
                 _chance(one.probability, answered),
-                f"{number(100.0 * one.deviation, 2)} %",
+                f"{number(100.0 * one.deviation, 2)} %" if one.deviation else "no other case seen",
             )
             for one in samples.chances
         )
@@ -347,6 +347,12 @@ def _unit(kind: QuantityKind, page: Page) -> str:
 def _step(unit: str) -> str:
     """The unit of a difference of figures in this unit."""
     return {"degC": "K", "degF": "degR"}.get(unit, unit)
+
+
+def _of_unit(unit: str) -> str:
+    """The unit of a column behind a comma; a plain number needs none."""
+    text = unit_text(_step(unit))
+    return "" if text == "1" else f", {text}"
 
 
 def _value(value: float, kind: QuantityKind, unit: str) -> float:
