@@ -282,7 +282,8 @@ class _Assessment:
             )
             texts[row.id] = (row.that, row.met)
         margin = measured(self.chain, MARGIN) if MARGIN in self.solved.base.results else None
-        if margin is not None:
+        said = any(one.result.name == MARGIN and one.limit == 0.0 for one in statements)
+        if margin is not None and not said:
             statements.append(Statement(POSITIVE_MARGIN, margin, ">", 0.0))
             texts[POSITIVE_MARGIN] = (POSITIVE_MARGIN, self._named(MARGIN).value > 0.0)
         return statements, texts, tuple(not_sampled)

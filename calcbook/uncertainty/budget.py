@@ -64,18 +64,18 @@ def first_order(
     parts = [slopes[figure.id] * figure.standard for figure in acting]
     matrix = correlation_matrix([figure.id for figure in acting], correlations or {})
     variance = float(np.asarray(parts) @ matrix @ np.asarray(parts)) if parts else 0.0
-    is_correlated = bool(np.any(matrix != np.eye(len(acting))))
+    shared = (matrix != np.eye(len(acting))).any(axis=1)
     lines = tuple(
         Line(
             figure.id,
             slopes[figure.id],
             part,
-            math.nan if is_correlated or variance <= 0.0 else part**2 / variance,
+            math.nan if joint or variance <= 0.0 else part**2 / variance,
         )
-        for figure, part in zip(acting, parts, strict=True)
+        for figure, part, joint in zip(acting, parts, shared, strict=True)
     )
     standard = math.sqrt(max(variance, 0.0))
-    degrees = math.inf if is_correlated else effective_degrees(acting, parts, standard)
+    degrees = math.inf if shared.any() else effective_degrees(acting, parts, standard)
     return FirstOrder(lines, standard, degrees)
 
 

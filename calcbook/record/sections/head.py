@@ -18,6 +18,7 @@ from calcbook.record.numbers import (
 )
 from calcbook.record.page import Page, case_name, counted
 from calcbook.record.sections.duty import brief_rows
+from calcbook.record.sections.uncertainty import how_sure
 
 
 def confirmation(page: Page) -> str:
@@ -78,6 +79,7 @@ def brief(page: Page) -> list[Block]:
         Heading(2, "2. Result in brief"),
         Table(("Result", "Value", "Formula or basis"), tuple(_brief_rows(page))),
         *_criteria(page),
+        *how_sure(page),
         *_governing(page),
         *open_items(page),
     ]

@@ -34,6 +34,17 @@ def uncertainty(page: Page) -> list[Block]:
     return [*blocks, *_sampled(found, page)]
 
 
+def how_sure(page: Page) -> list[Block]:
+    """For the brief: how often each criterion holds over the samples, where the file asks for them."""
+    found = page.solved.uncertainty
+    samples = found.sampling if found is not None else None
+    if samples is None or not samples.chances:
+        return []
+    answered = samples.trials - samples.unanswered
+    words = "; ".join(f"{one.text}: {_chance(one.probability, answered)}" for one in samples.chances)
+    return [Paragraph(f"Probability that it holds, from the uncertainties of section 11: {words}.")]
+
+
 # --- what it is made of -----------------------------------------------------------------------------
 
 
@@ -149,6 +160,11 @@ def _budget(budget: Budget, page: Page) -> list[Block]:
     # Rounded before it is ranked, so that contributions that are alike keep the order of the file.
     rows = sorted(budget.rows, key=lambda row: -float(f"{abs(row.contribution):.9g}"))
     lines: list[Block] = [heading, Table(columns, tuple(_budget_row(row, unit) for row in rows))]
+    joint = [row for row in rows if math.isnan(row.share)]
+    if joint and budget.standard > 0.0:
+        rest = 1.0 - sum(row.share for row in rows if not math.isnan(row.share))
+        names = ", ".join(_symbol(row) for row in joint)
+        lines.append(Paragraph(f"{names}: correlated, together {percent(rest)} of the variance."))
     if math.isfinite(budget.degrees):
         lines.append(
             Paragraph(
@@ -162,9 +178,8 @@ def _budget(budget: Budget, page: Page) -> list[Block]:
 def _budget_row(row: BudgetRow, unit: str) -> tuple[str, ...]:
     item = row.input
     own = item.kind.unit
-    symbol = item.id.replace("factor/", "B of ") if item.is_method else written_name(item.symbol)
     return (
-        symbol,
+        _symbol(row),
         item.title,
         number(item.value, 6),
         number(item.standard, STANDARD_DIGITS),
@@ -175,6 +190,11 @@ def _budget_row(row: BudgetRow, unit: str) -> tuple[str, ...]:
         number(in_unit(row.contribution, _step(unit)), STANDARD_DIGITS),
         NOT_SEPARABLE if math.isnan(row.share) else percent(row.share),
     )
+
+
+def _symbol(row: BudgetRow) -> str:
+    item = row.input
+    return item.id.replace("factor/", "B of ") if item.is_method else written_name(item.symbol)
 
 
 # --- samples ----------------------------------------------------------------------------------------
