@@ -201,6 +201,7 @@ class _Differences:
             ("report", self._report),
             ("cases", self._cases),
             ("accept", self._statements),
+            ("uncertainty", self._beside),
         )
         for name, read in sections:
             read(name)
@@ -446,6 +447,12 @@ class _Differences:
     def _report(self, section: str) -> None:
         for name, key, old, new in self._pairs(*self._roots(section), section):
             self._whole((section, name), "report", f"report, {name}", old, new, key, moves=name == "U on")
+
+    def _beside(self, section: str) -> None:
+        """A section that moves no result: one change as a whole."""
+        old, new = self._roots(section)
+        if _meaning(old) != _meaning(new):
+            self._whole((section,), section, section, old, new, None, moves=False)
 
     def _other(self, section: str) -> None:
         """A section without rules of its own: each entry is a change, of the kind that the section is

@@ -26,7 +26,7 @@ from calcbook.library.operations import Operation
 from calcbook.revisions.changes import ORDER, Change, Edit, entries_of, item_name
 from calcbook.revisions.sides import Side
 
-LEFT_OUT = frozenset(("revisions", "assumptions", "acceptance", "cases", "accept"))
+LEFT_OUT = frozenset(("revisions", "assumptions", "acceptance", "cases", "accept", "uncertainty"))
 LISTS = ("resistances", "parallel", "acceptance", "accept", "revisions")
 
 

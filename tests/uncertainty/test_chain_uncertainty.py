@@ -3,10 +3,12 @@
 from __future__ import annotations
 
 import math
+from pathlib import Path
 from statistics import NormalDist
 
 import numpy as np
 import pytest
+from plain_models import Plain
 from uncertain_calculations import (
     HEATED,
     STATED,
@@ -19,7 +21,8 @@ from uncertain_calculations import (
 
 from calcbook.chain.factors import with_factors
 from calcbook.chain.solve import solve
-from calcbook.interface import record_text
+from calcbook.interface import record_text, solve_file
+from calcbook.uncertainty.budget import wide_slopes
 from calcbook.uncertainty.measured import measured
 from calcbook.uncertainty.samples import ChainModel
 from calcbook.uncertainty.sampling import propagate
@@ -301,3 +304,135 @@ def test_every_result_that_is_propagated_is_the_result(tmp_path) -> None:
         names
     )
     assert {"h tube film clean", "R wall service", "T inside surface service", "dT hot service"} <= set(names)
+
+
+# --- duties, pressures, and the examples of the book ------------------------------------------------
+
+DUTY = (
+    HEATED.replace("geometry:", "DUTY_STREAMSgeometry:")
+    .replace("on: inside, temperature: T_i}", "on: inside, stream: warm}")
+    .replace("on: outside, temperature: T_o}", "on: outside, stream: cool}")
+    .replace(
+        "DUTY_STREAMS",
+        "fluids:\n"
+        "  liquor: {constants: {density: 1000 kg/m^3, viscosity: 0.001 Pa s, conductivity: 0.6 W/(m K),"
+        " heat capacity: 4000 J/(kg K)}, source: test}\n"
+        "streams:\n"
+        "  warm: {fluid: liquor, phase: liquid, flow: m}\n"
+        "  cool: {fluid: liquor, phase: liquid}\n",
+    )
+    .replace(
+        "givens:\n",
+        "givens:\n"
+        "  m: {value: 5 kg/s, is: flow, source: test}\n"
+        "  T_1: {value: 85 degC, is: warm inlet, source: test}\n"
+        "  T_2: {value: 75 degC, is: warm outlet, source: test}\n"
+        "  T_3: {value: 25 degC, is: cool inlet, source: test}\n"
+        "  T_4: {value: 35 degC, is: cool outlet, source: test}\n",
+    )
+    .replace("  T_i: {value: 80 degC, is: inside temperature, source: test}\n", "")
+    .replace("  T_o: {value: 30 degC, is: outside temperature, source: test}\n", "")
+    + "duty:\n"
+    "  arrangement: counterflow\n"
+    "  hot: {stream: warm, inlet: T_1, outlet: T_2}\n"
+    "  cold: {stream: cool, inlet: T_3, outlet: T_4}\n"
+)
+
+
+def test_the_margin_of_a_duty_in_closed_form(tmp_path) -> None:
+    """Equal capacity flows, ends 50 K apart: M + 1 = U·A·ΔT_lm/(m·cp·(T_1 - T_2)), U free of temperatures."""
+    body = with_tolerance(DUTY, m="2 %", T_2="{standard: 0.5 K}", h_o="10 %")
+    found = solved(tmp_path, body, SAMPLED.format("area_margin"))
+    ratio = 1.0 + found.base.results["area_margin"].value
+    u = found.base.results["U_service"].value
+
+    def mean(warm_out: float) -> float:
+        first, second = 85.0 - 35.0, warm_out - 25.0
+        return first if first == second else (first - second) / math.log(first / second)
+
+    def ratio_at(warm_out: float) -> float:
+        return ratio * mean(warm_out) / mean(75.0) * (85.0 - 75.0) / (85.0 - warm_out)
+
+    expected = {
+        "given/m": -ratio / 5.0 * (0.02 * 5.0 / math.sqrt(3.0)),
+        "given/T_2": (ratio_at(75.001) - ratio_at(74.999)) / 0.002 * 0.5,
+        "given/h_o": ratio * u / 1500.0**2 * (150.0 / math.sqrt(3.0)),
+    }
+    budget = budget_of(found, "area_margin")
+    assert {row.input.id: row.contribution for row in budget.rows} == pytest.approx(expected, rel=1e-5)
+    chance = found.uncertainty.sampling.chances[0]
+    assert chance.text == "area_margin > 0"
+    # The margin lies some ten standard uncertainties above zero: no sample shows another sign.
+    assert budget.value > 8.0 * budget.standard
+    assert chance.nominal and chance.probability == 1.0
+
+
+def test_a_drawn_pressure_is_what_that_pressure_gives(tmp_path) -> None:
+    """Air at 3 bar ± 5 %: properties about the stated pressure against those of the pressure itself.
+
+    The density of air is straight in pressure within 1e-4 over 5 % (its compressibility factor is 0.9996 there), and
+    the film follows it to the power 0.8.
+    """
+    body = FLOW.replace("MASS", "0.9").replace("fluid: water", "fluid: air")
+    body = body.replace("{value: 4 bara, source: test}", "p_air").replace(
+        "givens:\n", "givens:\n  p_air: {value: 3 bara, is: pressure, source: test, tolerance: 5 %}\n"
+    )
+    body = body.replace("flow: m_hot", "flow: {value: 9 m/s, source: test}")
+    found = solved(tmp_path, body)
+    chain = with_factors(found.chain)
+    one = measured(chain, "U_service")
+    assert one is not None
+    model = ChainModel(chain, found.base.solutions, [one])
+    at = np.array([2.85e5, 2.95e5, 3.0e5, 3.15e5])
+    values = model.outputs({"given/p_air": at})["U_service"]
+    for pressure, value in zip(at, values, strict=True):
+        inputs = {**chain.case_inputs(""), "given/p_air": np.asarray(pressure)}
+        direct = solve(chain, inputs, "service").number(chain.results["U"])
+        assert value == pytest.approx(direct, rel=1e-4)
+    budget = budget_of(found, "U_service")
+    assert any(row.input.id == "given/p_air" for row in budget.rows)
+
+
+BOOK = Path(__file__).resolve().parents[2] / "calcs"
+EXAMPLES = sorted(
+    path for path in BOOK.glob("*.yaml") if path.name != "book.yaml" and "signoffs" not in path.name
+)
+
+
+@pytest.mark.parametrize("path", EXAMPLES, ids=lambda path: path.stem)
+def test_slopes_of_every_example_against_differences(path: Path) -> None:
+    """Every budget against central differences of the chain itself, closed again beside the stated figures.
+
+    A step of 1e-3 standard uncertainties leaves 1e-6 of curvature and some 1e-5 of rounding where little moves.
+    """
+    found = solve_file(path)
+    stated = any(given.tolerance for given in found.chain.calculation.givens.values())
+    assert (found.uncertainty is not None) == stated
+    if found.uncertainty is None:
+        return
+    chain = with_factors(found.chain)
+    results = [measured(chain, budget.result) for budget in found.uncertainty.budgets]
+    model = ChainModel(chain, found.base.solutions, [one for one in results if one is not None])
+    lines = {row.input.id: row.input for budget in found.uncertainty.budgets for row in budget.rows}
+    small = [Plain(name, item.value, 1e-3 * item.standard) for name, item in lines.items()]
+    differences = wide_slopes(model.outputs, small)
+    for budget in found.uncertainty.budgets:
+        uncorrelated = sum(row.share for row in budget.rows if not math.isnan(row.share))
+        assert uncorrelated <= 1.0 + 1e-12
+        for row in budget.rows:
+            there = differences[budget.result][row.input.id] * row.input.standard
+            assert there == pytest.approx(row.contribution, rel=1e-4, abs=1e-7 * budget.standard), (
+                row.input.id
+            )
+
+
+def test_the_example_whose_decision_the_uncertainty_changes() -> None:
+    """HC-985: the margin is positive, its probability is below the 95 % of the procedure, and the clamp on the
+    outlet counts for most, not the shell-side film that was to be tested."""
+    found = solve_file(BOOK / "hc-985.yaml")
+    assert found.base.criteria[0].met
+    assert 0.8 < found.uncertainty.sampling.chances[0].probability < 0.9
+    rows = {row.input.symbol: row.share for row in budget_of(found, "area_margin").rows}
+    assert max(rows, key=lambda name: rows[name] if not math.isnan(rows[name]) else 0.0) == "T_ho"
+    assert rows["h_o"] < 0.05
+    assert "area_margin >= 0: 85." in record_text(found)
