@@ -236,6 +236,7 @@ class Term:
     deposit: Deposit | None = None
     growth: Growth | None = None
     fins: Fins | None = None
+    fluid: FluidText | None = None
     branches: tuple[Term, ...] = ()
     includes: tuple[str, ...] = ()
     holds_for: tuple[Value, Value] | None = None

@@ -7,7 +7,7 @@ from __future__ import annotations
 
 from calcbook.documents import Description, Key
 
-TERM_KINDS = ("film", "fouling", "wall", "contact", "radiation", "stated")
+TERM_KINDS = ("film", "fouling", "wall", "contact", "gap", "radiation", "stated")
 
 HEAD = Description(
     "calculation",
@@ -358,6 +358,23 @@ TERM = Description(
         Key("scales with", "factor on a stated value, as a relation", "relation"),
         Key("growth", "fouling resistance that grows in service", "mapping", of=GROWTH),
         Key("fins", "fins on the surface that the film acts on", "mapping", of=FINS),
+        Key("fluid", "fluid that a gap holds", "node", of=FLUID),
+        Key("phase", "phase of the fluid of a gap", "choice", choices=("liquid", "gas")),
+        Key("pressure", "pressure of the fluid of a gap", "node", of=SOURCED, quantity="pressure"),
+        Key(
+            "inner emissivity",
+            "emissivity of the inner side of a gap",
+            "node",
+            of=SOURCED,
+            quantity="emissivity",
+        ),
+        Key(
+            "outer emissivity",
+            "emissivity of the outer side of a gap",
+            "node",
+            of=SOURCED,
+            quantity="emissivity",
+        ),
         Key(
             "vapour velocity", "speed of a condensing vapour", "node", of=SOURCED, quantity="vapour velocity"
         ),
@@ -365,6 +382,7 @@ TERM = Description(
 )
 # Which keys a term of each kind may have: a key that would have no effect is a fault.
 _STATED = ("coefficient", "resistance", "on")
+GAP_SIDES = ("inner emissivity", "outer emissivity")
 TERM_KEYS = {
     "film": (
         "stream",
@@ -382,6 +400,7 @@ TERM_KEYS = {
     "fouling": (*_STATED, "deposit", "growth", "service"),
     "wall": ("material", "conductivity", "thickness", "outside diameter", "resistance", "on"),
     "contact": _STATED,
+    "gap": ("situation", "method", "with", "fluid", "phase", "pressure", "thickness", *GAP_SIDES),
     "radiation": ("emissivity", "surroundings", "method"),
     "stated": _STATED,
 }

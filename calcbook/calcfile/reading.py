@@ -671,15 +671,15 @@ class Reader:
         fields = read_mapping(node, described.NON_CONDENSABLE, self.collector, node.place)
         return self.value(fields.node("mole fraction"))
 
-    def fluid(self, node: Node | None) -> FluidText | None:
-        """A fluid, or None where there is none or it has a fault."""
+    def fluid(self, node: Node | None, name_here: str = "fluid of the stream") -> FluidText | None:
+        """A fluid, or None where there is none or it has a fault; ``name_here`` names one that is written in place."""
         if node is None:
             return None
         if isinstance(node, Scalar):
             name = " ".join(node.text.split())
             place = node.part(1, len(node.text) + 1)
             return self.fluids[name] if name in self.fluids else FluidText("name", name, place)
-        return self.fluid_record("fluid of the stream", node)
+        return self.fluid_record(name_here, node)
 
     def fluid_record(self, name: str, node: Node) -> FluidText | None:
         fields = read_mapping(node, described.FLUID, self.collector, node.place)
@@ -926,7 +926,7 @@ class Reader:
         if isinstance(node, MappingNode) and node.key("parallel") is not None:
             return self.parallel(fields, name)
         kind = self.term_kind(fields, node)
-        text_keys = ("name", "kind", "stream", "situation", "method", "on", "material", "service")
+        text_keys = ("name", "kind", "stream", "situation", "method", "on", "material", "service", "phase")
         value_keys = (
             "coefficient",
             "resistance",
@@ -937,6 +937,8 @@ class Reader:
             "emissivity",
             "surroundings",
             "vapour velocity",
+            "pressure",
+            *described.GAP_SIDES,
         )
         values = {key: value for key in value_keys if (value := self.value(fields.node(key))) is not None}
         return Term(
@@ -950,6 +952,7 @@ class Reader:
             deposit=self.deposit(fields.node("deposit"), "growth" in fields),
             growth=self.growth(fields.node("growth")),
             fins=self.fins(fields.node("fins")),
+            fluid=self.fluid(fields.node("fluid"), "fluid of the gap"),
             includes=self.names_of(fields.node("includes")),
             holds_for=self.range_of(fields.node("holds for")),
             scales_with=self.factor(fields.scalar("scales with")),

@@ -27,6 +27,7 @@ from calcbook.chain.findings import (
     wall_checks,
 )
 from calcbook.chain.fluids import PropertyOperation
+from calcbook.chain.gaps import PLACE, gaps, unused_steps, with_method
 from calcbook.chain.outcome import (
     BranchRow,
     CaseOutcome,
@@ -388,6 +389,10 @@ class _Analysis:
             else:
                 own = solution.number(element.resistance)
                 methods = element.material
+                if element.gap is not None:
+                    coefficient = 1.0 / own
+                    methods = ", ".join(chosen(way, solution).method.id for way in element.gap.ways)
+                    branches = self._ways(element, solution) if len(element.gap.ways) > 1 else ()
             rows.append(
                 TermRow(
                     element.name,
@@ -415,6 +420,23 @@ class _Analysis:
             reference = solution.number(branch.reference) if branch.reference else math.nan
             flow = coefficient * area * outward * (surface - reference)
             rows.append(BranchRow(branch.name, branch.kind, coefficient, reference, flow))
+        return tuple(rows)
+
+    def _ways(self, layer: Layer, solution: Solution) -> tuple[BranchRow, ...]:
+        """The ways for heat across a gap, each with its share of the heat flow."""
+        assert layer.gap is not None
+        area = solution.number(self.chain.surfaces[layer.surface].area)
+        known = self.chain.has_temperatures
+        first, second = (
+            solution.number(name) if known else math.nan
+            for name in (layer.first_temperature, layer.second_temperature)
+        )
+        rows = []
+        for way, name in zip(layer.gap.ways, layer.gap.coefficients, strict=True):
+            coefficient = solution.number(name)
+            rows.append(
+                BranchRow(way.name, way.kind, coefficient, second, coefficient * area * (first - second))
+            )
         return tuple(rows)
 
     # -- chain rows ---------------------------------------------------------------------------------
@@ -447,7 +469,9 @@ class _Analysis:
             steps = [step for step in self.chain.steps if step.owner in _names(element)]
             notes: list[str] = []
             if isinstance(element, Layer):
-                steps += element.steps
+                steps += self._layer_steps(element, solutions)
+                for way in element.gap.ways if element.gap is not None else ():
+                    notes += _branch_notes(way, solutions)
             else:
                 for branch in element.branches:
                     steps += self._branch_steps(branch, solutions)
@@ -460,6 +484,16 @@ class _Analysis:
                 TermChain(element.name, _title(element), self._rows(fresh, solutions), tuple(notes))
             )
         return tuple(chains)
+
+    def _layer_steps(self, layer: Layer, solutions: Mapping[str, Solution]) -> list[ChainStep]:
+        """The steps of a layer; of a gap without those of methods that are not used."""
+        if layer.gap is None:
+            return list(layer.steps)
+        used = [chosen(way, solutions[condition]) for way in layer.gap.ways for condition in CONDITIONS]
+        for candidate in used:
+            self.used_cards |= {f"method {card.id}": card.digest_text for card in candidate.cards}
+        unused = unused_steps(layer.gap, used)
+        return [step for step in layer.steps if step.id not in unused]
 
     def _branch_steps(self, branch: Branch, solutions: Mapping[str, Solution]) -> list[ChainStep]:
         steps = list(branch.choice_steps)
@@ -511,6 +545,18 @@ class _Analysis:
                             )
                             if row is not None:
                                 rows.append(row)
+        for layer, gap in gaps(self.chain):
+            for condition in CONDITIONS:
+                row = self._property_row(
+                    gap.fluid,
+                    PLACE,
+                    condition,
+                    f"{layer.name}/{PLACE}",
+                    gap.fluid.temperature,
+                    solutions[condition],
+                )
+                if row is not None:
+                    rows.append(row)
         return tuple(rows)
 
     def _saturated_rows(self, state: StreamState, solutions: Mapping[str, Solution]) -> list[PropertyRow]:
@@ -581,6 +627,8 @@ class _Analysis:
         for element in self.chain.elements:
             if isinstance(element, Layer):
                 limits += element.checks
+                for way in element.gap.ways if element.gap is not None else ():
+                    limits += chosen(way, solution).checks
                 continue
             for branch in element.branches:
                 limits += chosen(branch, solution).checks
@@ -719,7 +767,27 @@ class _Analysis:
                     CrossRow(branch.name, method, "", "", False, math.nan, math.nan, math.nan, reason)
                     for method, reason in branch.unusable.items()
                 ]
-        return tuple(rows)
+        return (*rows, *self._cross_gaps(inputs, base))
+
+    def _cross_gaps(self, inputs: Mapping[str, np.ndarray], base: CaseOutcome) -> list[CrossRow]:
+        """Every other method of a gap's situation, put in its place and the circuit closed again."""
+        rows = []
+        for layer, gap in gaps(self.chain):
+            for way in gap.ways:
+                used = chosen(way, base.solutions[SERVICE])
+                others = {part.method.id: part for part in (*way.candidates, *way.alternatives)}
+                others.pop(used.method.id, None)
+                rows += [
+                    self._cross_row(
+                        way, used, other, inputs, base, with_method(self.chain, layer, way, other)
+                    )
+                    for other in others.values()
+                ]
+                rows += [
+                    CrossRow(way.name, method, "", "", False, math.nan, math.nan, math.nan, reason)
+                    for method, reason in way.unusable.items()
+                ]
+        return rows
 
     def _cross_row(
         self,
@@ -728,7 +796,9 @@ class _Analysis:
         other: Candidate,
         inputs: Mapping[str, np.ndarray],
         base: CaseOutcome,
+        changed: Chain | None = None,
     ) -> CrossRow:
+        """One row of the cross-check; ``changed`` is the chain that has the other method in its place already."""
         reference = base.results["U_service"].value
         same = other.method.family == used.method.family
 
@@ -746,7 +816,11 @@ class _Analysis:
                 left_out,
             )
 
-        if not self.chain.has_temperatures and needs_temperatures(self.chain, branch, other):
+        if (
+            changed is None
+            and not self.chain.has_temperatures
+            and needs_temperatures(self.chain, branch, other)
+        ):
             return row(
                 math.nan,
                 math.nan,
@@ -756,7 +830,10 @@ class _Analysis:
         reason = self._out_of_range(other, self._at_solution(other, base.solutions[SERVICE]))
         if reason:
             return row(math.nan, math.nan, math.nan, reason)
-        solution = solve(self.chain, inputs, SERVICE, {branch.name: other})
+        if changed is not None:
+            solution = solve(changed, inputs, SERVICE)
+        else:
+            solution = solve(self.chain, inputs, SERVICE, {branch.name: other})
         reason = (
             self._out_of_range(other, solution) if bool(np.all(solution.converged)) else "does not close here"
         )
@@ -885,6 +962,10 @@ def _kind(element: Group | Layer) -> str:
 
 
 def _title(element: Group | Layer) -> str:
+    if isinstance(element, Layer) and element.gap is not None:
+        return " beside ".join(
+            way.situation.title if way.situation is not None else way.kind for way in element.gap.ways
+        )
     if isinstance(element, Layer):
         return element.material or element.kind
     return " beside ".join(

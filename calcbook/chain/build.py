@@ -13,6 +13,7 @@ from calcbook.chain.duty import DutyLayout
 from calcbook.chain.films import FilmScope
 from calcbook.chain.fins import FinnedSide, check_finned_situation, lay_out_fins, lay_out_fins_layer
 from calcbook.chain.growth import Grown, GrownDeposit, lay_out_growth, lay_out_thickness
+from calcbook.chain.gaps import lay_out_gap
 from calcbook.chain.petroleum import lay_out_cards
 from calcbook.chain.pressure import asked_symbols, lay_out_pressure_drop
 from calcbook.chain.scope import Scope, is_empty_source, unnamed_kind
@@ -381,12 +382,12 @@ class _Builder:
                     f"`{term.name}` lies between two walls",
                     expected="fouling between a film and the wall next to it",
                 )
-            elif term.kind == "contact" and not (walls and walls[0] < index < walls[-1]):
+            elif term.kind in ("contact", "gap") and not (walls and walls[0] < index < walls[-1]):
                 self.collector.add(
                     "term-order",
                     term.place,
                     f"`{term.name}` does not lie between two walls",
-                    expected="a contact between two walls",
+                    expected=f"a {term.kind} between two walls",
                 )
         return len(list(self.collector)) == before
 
@@ -422,6 +423,9 @@ class _Builder:
                     "stated in the calculation file",
                     term.name,
                 )
+                continue
+            if term.kind == "gap":
+                elements.append(self._gap(term, shape, at))
                 continue
             elements.append(self._wall(wall, shape) if wall is not None else self._layer(term, shape, at))
         if any(element is None for element in elements):
@@ -681,6 +685,17 @@ class _Builder:
                 ),
             )
         return Layer(term.name, term.kind, surface, resistance, checks=checks)
+
+    def _gap(self, term: Term, shape: Shape, at: int) -> Layer | None:
+        layer, film = lay_out_gap(self.scope, self.library, term, shape.name, shape.dimensions, at)
+        if film is not None and film.situation is not None:
+            self._check_with(term, film.situation, film)
+        for way in layer.gap.ways if layer is not None and layer.gap is not None else ():
+            for candidate in way.candidates:
+                self._card_state(
+                    candidate.method.id, candidate.method.state.status, candidate.method.state.successor, term
+                )
+        return layer
 
     # -- walls --------------------------------------------------------------------------------------
 
@@ -1214,15 +1229,20 @@ STATED = Method(
 
 def _steps_of(element: Element) -> tuple[ChainStep, ...]:
     if isinstance(element, Layer):
-        return element.steps
-    films = tuple(
+        across = _steps_of_ways(element.gap.ways) if element.gap is not None else ()
+        return (*element.steps, *(step for step in across if step.owner == element.name))
+    films = _steps_of_ways(element.branches)
+    drops = tuple(branch.pressure_drop for branch in element.branches if branch.pressure_drop is not None)
+    return (*films, *(step for drop in drops for step in drop.steps))
+
+
+def _steps_of_ways(branches: tuple[Branch, ...]) -> tuple[ChainStep, ...]:
+    return tuple(
         step
-        for branch in element.branches
+        for branch in branches
         for candidate in (*branch.candidates, *branch.alternatives)
         for step in (*candidate.steps, *branch.choice_steps)
     )
-    drops = tuple(branch.pressure_drop for branch in element.branches if branch.pressure_drop is not None)
-    return (*films, *(step for drop in drops for step in drop.steps))
 
 
 def _kind_of_dimension(dim: tuple, reading: str) -> QuantityKind:

@@ -9,6 +9,7 @@ from typing import Any
 import numpy as np
 
 from calcbook.chain.checks import apart
+from calcbook.chain.gaps import gaps
 from calcbook.chain.outcome import CheckResult
 from calcbook.chain.roots import other_heat_flows
 from calcbook.chain.solve import Solution, chosen
@@ -198,7 +199,7 @@ def _check_surfaces(chain: Chain, values: Mapping[str, Any], collector: Collecto
 
 
 def wall_checks(chain: Chain, case: str, solution: Solution) -> list[CheckResult]:
-    """Against boiling, condensing and freezing at every wetted surface of a film with a fluid."""
+    """Against boiling, condensing and freezing at every wetted surface of a film or gap with a fluid."""
     results: list[CheckResult] = []
     if not chain.has_temperatures:
         return results
@@ -206,21 +207,34 @@ def wall_checks(chain: Chain, case: str, solution: Solution) -> list[CheckResult
         for branch in group.branches:
             if branch.kind == "film" and branch.stream:
                 results += _film_checks(chain, case, solution, group, branch)
+    for layer, gap in gaps(chain):
+        sides = [solution.number(name) for name in (layer.first_temperature, layer.second_temperature)]
+        results += _phase_checks(layer.name, gap.fluid, "", sides, case, solution)
     return results
 
 
 def _film_checks(
     chain: Chain, case: str, solution: Solution, group: Group, branch: Branch
 ) -> list[CheckResult]:
+    surface = solution.number(chain.results.get(f"T root {group.name}", group.surface_temperature))
+    phase_change = branch.situation.changes_phase if branch.situation is not None else ""
     state = chain.streams[branch.stream]
+    return _phase_checks(branch.name, state, phase_change, [surface], case, solution)
+
+
+def _phase_checks(
+    owner: str, state: StreamState, phase_change: str, sides: list[float], case: str, solution: Solution
+) -> list[CheckResult]:
+    """The phase of a fluid at the surfaces that it touches: at the hottest against boiling, else at the coldest."""
     pressure = solution.number(state.pressure) if state.pressure else None
     fraction = solution.number(state.fraction) if state.fraction else None
     fluid = state.fluid.state(pressure, fraction, state.phase)
     phase = state.phase or fluid.phase_at(solution.number(state.temperature))
-    surface = solution.number(chain.results.get(f"T root {group.name}", group.surface_temperature))
+    hottest, coldest = max(sides), min(sides)
     checks = []
 
     def add(name: str, that: str, limit: float | None, inside: bool, sign: str, because: str) -> None:
+        surface = hottest if sign == "<" else coldest
         known = limit is not None and math.isfinite(limit)
         state_word = "not evaluable" if not known else ("within" if inside else "outside")
         limit_text = (
@@ -231,8 +245,8 @@ def _film_checks(
         figure = f"T_s = {apart(surface - ICE_POINT, ((limit or 0.0) - ICE_POINT,), 4)} °C"
         checks.append(
             CheckResult(
-                f"{branch.name} / wall phase / {name}",
-                branch.name,
+                f"{owner} / wall phase / {name}",
+                owner,
                 "wall phase",
                 solution.condition,
                 case,
@@ -249,7 +263,6 @@ def _film_checks(
             )
         )
 
-    phase_change = branch.situation.changes_phase if branch.situation is not None else ""
     if fluid.has_vapour_pressure and not phase_change:
         boiling = fluid.saturation_temperature()
         if phase == "liquid":
@@ -257,7 +270,7 @@ def _film_checks(
                 "boils",
                 "T_s < T_sat",
                 boiling,
-                boiling is not None and surface < boiling,
+                boiling is not None and hottest < boiling,
                 "<",
                 "the method is for a liquid without boiling at the surface",
             )
@@ -266,7 +279,7 @@ def _film_checks(
                 "condenses",
                 f"T_s > {'T_dew' if state.fluid.text.kind == 'humid air' else 'T_sat'}",
                 boiling,
-                surface > boiling,
+                coldest > boiling,
                 ">",
                 "the method is for a gas without condensing at the surface",
             )
@@ -276,7 +289,7 @@ def _film_checks(
             "freezes",
             "T_s > T_freeze",
             freezing,
-            surface > freezing,
+            coldest > freezing,
             ">",
             "the method is for a liquid that does not freeze at the surface",
         )
@@ -309,20 +322,32 @@ def assumptions_of(chain: Chain, solutions: Mapping[str, Solution]) -> tuple[Run
                 if candidate.needs_direction and chain.has_temperatures:
                     text, by = _direction(group, branch, solution)
                     say(f"{branch.name}/direction/{condition}", f"{condition}: {text}", by, branch.name)
-    for state in chain.streams.values():
+    for layer, gap in gaps(chain):
+        for way in gap.ways:
+            for condition in reversed(CONDITIONS):
+                candidate = chosen(way, solutions[condition])
+                if way.situation is not None and not way.is_forced:
+                    say(
+                        f"{way.name}/method/{condition}",
+                        f"{condition}: method {candidate.method.id}.",
+                        f"{candidate.because}; {_choice_figures(way, solutions[condition])}",
+                        layer.name,
+                    )
+    for state in chain.fluids.values():
+        owner = f"stream {state.name}" if state.name in chain.streams else state.name
         if not state.pressure and state.fluid.text.kind == "name":
             say(
-                f"stream {state.name}/saturated",
+                f"{owner}/saturated",
                 f"Properties of {state.name} are those of the saturated liquid.",
                 "no pressure is stated; checks against boiling at the wall cannot be evaluated",
-                f"stream {state.name}",
+                owner,
             )
         if state.fluid.text.kind not in ("name", "humid air"):
             say(
-                f"stream {state.name}/vapour pressure",
+                f"{owner}/vapour pressure",
                 f"Boiling at the wall is not checked for {state.name}.",
                 "its fluid has no vapour pressure",
-                f"stream {state.name}",
+                owner,
             )
         if not state.phase:
             solution = solutions[SERVICE]
@@ -332,11 +357,11 @@ def assumptions_of(chain: Chain, solutions: Mapping[str, Solution]) -> tuple[Run
             if math.isfinite(at):
                 phase = state.fluid.state(pressure, fraction, "").phase_at(at)
                 say(
-                    f"stream {state.name}/phase",
+                    f"{owner}/phase",
                     f"{state.name} is taken as {phase}.",
                     f"state at {celsius(at)}"
                     + (f" and {number_text(pressure / 1e5, 5)} bar" if pressure else ""),
-                    f"stream {state.name}",
+                    owner,
                 )
     if chain.has_temperatures:
         if "duty" in chain.results:

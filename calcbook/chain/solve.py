@@ -618,6 +618,9 @@ class Engine:
                 self.values[element.second_temperature] = self._as_input(first - self._drop(element))
             if element.first_temperature or element.film:
                 run(element.steps, self.values)
+            for way in element.gap.ways if element.gap is not None else ():
+                if way.choice:
+                    self.chosen[way.name] = self._rows(way, self.values, self.size)
 
     def _drop(self, element: Group | Layer) -> Array:
         if element.name in self.numbers:

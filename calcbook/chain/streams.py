@@ -29,7 +29,7 @@ def lay_out_stream(scope: Scope, stream: Stream, library: Library, mean: str = "
     ``mean`` is the id of the temperature of a stream that states none: the mean of its ends.
     """
     owner = f"stream {stream.name}"
-    fluid = _fluid(scope, stream.fluid, library) if stream.fluid is not None else None
+    fluid = fluid_source(scope, stream.fluid, library) if stream.fluid is not None else None
     on_line = is_saturation(scope, stream.temperature)
     temperature = "" if on_line else scope.value(stream.temperature, "temperature", owner, "temperature")
     temperature = temperature or (mean if stream.temperature is None else "")
@@ -56,7 +56,7 @@ def lay_out_stream(scope: Scope, stream: Stream, library: Library, mean: str = "
     state = StreamState(
         stream.name,
         fluid,
-        _provider(scope, fluid, stream),
+        provider(scope, fluid),
         stream.phase,
         temperature,
         pressure,
@@ -135,7 +135,7 @@ def _saturation(scope: Scope, stream: Stream, fluid: FluidSource | None, pressur
         f"stream {stream.name}",
         BoilingOperation(fluid),
         {"p": pressure},
-        _provider(scope, fluid, stream),
+        provider(scope, fluid),
         vocabulary()["saturation temperature"],
     )
 
@@ -203,7 +203,8 @@ def _humidity(scope: Scope, stream: Stream, fluid: FluidSource, temperature: str
     )
 
 
-def _provider(scope: Scope, fluid: FluidSource, stream: Stream) -> str:
+def provider(scope: Scope, fluid: FluidSource) -> str:
+    """What gives a fluid's properties, in words. A fault where the fluid cannot be made."""
     fraction: float | None = None
     if fluid.text.kind != "humid air" and fluid.text.fraction is not None:
         fraction = _si_of(scope, fluid.text.fraction)
@@ -225,7 +226,7 @@ def _si_of(scope: Scope, value: Value) -> float | None:
     return value.quantity.value if value.quantity is not None else None
 
 
-def _fluid(scope: Scope, text: FluidText, library: Library) -> FluidSource | None:
+def fluid_source(scope: Scope, text: FluidText, library: Library) -> FluidSource | None:
     """The property fluid behind a fluid of the file. Faults: what the properties room raises."""
     try:
         if text.kind == "name":

@@ -174,12 +174,25 @@ class Group:
 
 
 @dataclass(frozen=True, slots=True)
+class Gap:
+    """A fluid shut in between two walls: the fluid, the ways for heat across it, and their coefficients.
+
+    ``ways`` refer to the outer side; ``coefficients`` are the ids of their film coefficients in the same order.
+    The temperature of the fluid is the mean of both sides.
+    """
+
+    fluid: StreamState
+    ways: tuple[Branch, ...]
+    coefficients: tuple[str, ...]
+
+
+@dataclass(frozen=True, slots=True)
 class Layer:
-    """A resistance in series: fouling, contact, stated, fins, or a wall between two surfaces.
+    """A resistance in series: fouling, contact, stated, fins, gap, or a wall between two surfaces.
 
     ``resistance`` is the id of its area resistance on ``surface``; a wall whose conductivity follows
-    its temperatures has ``steps`` that make it from T_1 and T_2. Fins have steps that make it from the
-    coefficient of the group named by ``film``, and the id of their surface ``efficiency``.
+    its temperatures has ``steps`` that make it from T_1 and T_2, and so has a ``gap``. Fins have steps that make
+    it from the coefficient of the group named by ``film``, and the id of their surface ``efficiency``.
     """
 
     name: str
@@ -193,6 +206,7 @@ class Layer:
     checks: tuple[ChainCheck, ...] = ()
     film: str = ""
     efficiency: str = ""
+    gap: Gap | None = None
 
 
 Element = Group | Layer
@@ -316,6 +330,19 @@ class Chain:
         """Whether both bulk temperatures are known, so that heat flow and surfaces can be found."""
         return bool(self.inner.bulk and self.outer.bulk)
 
+    @property
+    def fluids(self) -> dict[str, StreamState]:
+        """Every fluid with its state: the streams by name, and the fluids of gaps by the name of the term."""
+        enclosed = {
+            layer.name: layer.gap.fluid
+            for layer in self.elements
+            if isinstance(layer, Layer) and layer.gap is not None
+        }
+        return {
+            **self.streams,
+            **{name: fluid for name, fluid in enclosed.items() if name not in self.streams},
+        }
+
     def case_inputs(self, case: str) -> dict[str, Array]:
         """The figures of a case (the empty name is the base case) by input id."""
         values = {name: np.asarray(item.value) for name, item in self.inputs.items()}
@@ -362,6 +389,7 @@ __all__ = [
     "ChainStep",
     "ChoiceRow",
     "Element",
+    "Gap",
     "Group",
     "Input",
     "Layer",

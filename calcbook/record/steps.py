@@ -80,6 +80,10 @@ class StepTexts:
         )
         self.streams = {
             branch.name: branch.stream for group in (chain.inner, chain.outer) for branch in group.branches
+        } | {
+            element.name: element.name
+            for element in chain.elements
+            if isinstance(element, Layer) and element.gap is not None
         }
 
     # -- rows ---------------------------------------------------------------------------------------
@@ -247,7 +251,7 @@ class StepTexts:
                 next(
                     (
                         f"properties of {name}"
-                        for name, state in self.chain.streams.items()
+                        for name, state in self.chain.fluids.items()
                         if state.fluid is asked.source
                     ),
                     step.basis,

@@ -11,6 +11,8 @@ LIBRARY = Library()
 ON_TRIAL = {
     # Creeping flow across a tube: no other equation of the library reaches there.
     ("across-tube", "nakai-okazaki-1975"),
+    # Steep layers heated from below: the tilted part is from memory, upright it is the checked law.
+    ("enclosure-inclined", "el-sherbiny-1982"),
     # The only rule for a stable layer in forced and free flow together.
     ("blended-horizontal-plate", "mixed-blend-horizontal-plate-stable"),
     # Bridges between laminar and turbulent flow: straight lines between two checked ends.

@@ -53,15 +53,17 @@ def givens(page: Page) -> list[Block]:
                 tuple(_literal_row(item) for item in literals),
             )
         )
-    for stream in page.calculation.streams.values():
-        if stream.fluid is not None and stream.fluid.kind in ("table", "constants"):
-            blocks += _fluid(stream.name, stream.fluid)
-        if stream.fluid is not None and stream.fluid.kind == "petroleum":
-            blocks += _petroleum(stream.name, stream.fluid, page)
+    fluids = [(f"stream {stream.name}", stream.fluid) for stream in page.calculation.streams.values()]
+    fluids += [(term.name, term.fluid) for term in page.calculation.resistances]
+    for owner, fluid in fluids:
+        if fluid is not None and fluid.kind in ("table", "constants"):
+            blocks += _fluid(owner, fluid)
+        if fluid is not None and fluid.kind == "petroleum":
+            blocks += _petroleum(owner, fluid, page)
     return blocks
 
 
-def _petroleum(stream: str, fluid: FluidText, page: Page) -> list[Block]:
+def _petroleum(owner: str, fluid: FluidText, page: Page) -> list[Block]:
     """A petroleum liquid: each property with the relations of its card, and the viscosity as written."""
     rows = []
     for name, card in CARDS.items():
@@ -74,7 +76,7 @@ def _petroleum(stream: str, fluid: FluidText, page: Page) -> list[Block]:
     if points:
         rows.append(("viscosity", "ASTM D341, times the density", points))
     return [
-        Heading(3, f"Fluid {fluid.name} of stream {stream}"),
+        Heading(3, f"Fluid {fluid.name} of {owner}"),
         Paragraph(
             f"A petroleum liquid ({fluid.product or 'no product stated'}) by its relative density. Source:"
             f" {fluid.source or 'no source'}."
@@ -83,14 +85,14 @@ def _petroleum(stream: str, fluid: FluidText, page: Page) -> list[Block]:
     ]
 
 
-def _fluid(stream: str, fluid: FluidText) -> list[Block]:
+def _fluid(owner: str, fluid: FluidText) -> list[Block]:
     """A fluid that the file states itself: each property with its values as written."""
     rows = [(name, "; ".join(value.text for value in values)) for name, values in fluid.columns.items()]
     if fluid.astm:
         points = "; ".join(f"{temperature.text}: {viscosity.text}" for temperature, viscosity in fluid.astm)
         rows.append(("viscosity after ASTM D341", points))
     return [
-        Heading(3, f"Fluid {fluid.name} of stream {stream}"),
+        Heading(3, f"Fluid {fluid.name} of {owner}"),
         Paragraph(f"Source: {fluid.source or 'no source'}."),
         Table(("Property", "Values as written"), tuple(rows)),
     ]
@@ -201,7 +203,7 @@ def _properties(page: Page) -> list[Block]:
 
 def _saturation_rows(page: Page) -> tuple[tuple[str, ...], ...]:
     """Saturation temperature, latent heat, surface tension and the like of streams that change phase."""
-    streams = {id(state.fluid): name for name, state in page.chain.streams.items()}
+    streams = {id(state.fluid): name for name, state in page.chain.fluids.items()}
     found = {}
     for row in (row for term in page.base.chains for row in term.rows):
         operation, kind = row.step.operation, row.step.kind
@@ -260,7 +262,7 @@ def _flow_states(page: Page) -> list[PropertyRow]:
 
 
 def _property_row(row: PropertyRow, asked: list[tuple[str, str, int]], page: Page) -> tuple[str, ...]:
-    without = pressure_words(page.chain.streams[row.stream])
+    without = pressure_words(page.chain.fluids[row.stream])
     pressure = number(row.pressure / PASCALS_OF_BAR) if math.isfinite(row.pressure) else without
     values = (
         number(row.values[name], digits) if name in row.values else NOT_USED for name, _, digits in asked
