@@ -34,6 +34,8 @@ CARDS = (
     "friction-section-laminar",
     "friction-coil-schmidt-1967",
     "martin-1996-friction",
+    "mueller-steinhagen-heck-1986",
+    "esdu-86022-dp",
 )
 # Figures that a check point cannot miss, each with its reason.
 UNCOVERED = {
@@ -45,6 +47,8 @@ UNCOVERED = {
         ("relation of w", "0.25"),
         ("relation of w", "2100"),
     },
+    # The factors of laminar and turbulent flow meet at 1187, so that moving it by 1 % moves no figure.
+    "mueller-steinhagen-heck-1986": {("relation of f_lo", "1187"), ("relation of f_go", "1187")},
     # The branches meet at 22000, as printed; moving the bound by 1 % moves no check point across it.
     "friction-coil-schmidt-1967": {("relation of e_t", "22000")},
 }
