@@ -12,8 +12,8 @@ from calcbook.chain.circuit import Circuit
 from calcbook.chain.duty import DutyLayout
 from calcbook.chain.films import FilmScope
 from calcbook.chain.fins import FinnedSide, check_finned_situation, lay_out_fins, lay_out_fins_layer
-from calcbook.chain.growth import Grown, GrownDeposit, lay_out_growth, lay_out_thickness
 from calcbook.chain.gaps import lay_out_gap
+from calcbook.chain.growth import Grown, GrownDeposit, lay_out_growth, lay_out_thickness
 from calcbook.chain.petroleum import lay_out_cards
 from calcbook.chain.pressure import asked_symbols, lay_out_pressure_drop
 from calcbook.chain.scope import Scope, is_empty_source, unnamed_kind
