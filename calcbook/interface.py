@@ -74,8 +74,13 @@ def _settings(folder: Path, collector: Collector) -> Settings:
 
 @cache
 def library_of(house: Path) -> Library:
-    """The library of a book, read once a process; cards do not change under a running command."""
+    """The library of a book, read once a process; cards do not change under a running command but ``watch``."""
     return Library(house)
+
+
+def forget_house_cards() -> None:
+    """Have every book's own cards read again when they are next wanted; built-in cards stay."""
+    library_of.cache_clear()
 
 
 def links_of(path: Path, settings: Settings, above: tuple[Path, ...] = ()) -> Links:

@@ -8,6 +8,7 @@ from pathlib import Path
 
 from calcbook.book.current import record_difference, results_difference
 from calcbook.book.entries import Entry
+from calcbook.book.mistakes import MISTAKE_ACTION
 from calcbook.book.running import RECORD, RESULTS
 from calcbook.faults import Faults
 from calcbook.interface import NotConverged
@@ -84,6 +85,8 @@ def _of_entry(entry: Entry, errata: Sequence[Erratum]) -> Iterator[AuditFinding]
         yield AuditFinding(
             "not converged", entry.found.name, 0, entry.not_converged, "change the givens or the method"
         )
+    if entry.mistake:
+        yield AuditFinding("mistake of calcbook", entry.found.name, 0, entry.mistake, MISTAKE_ACTION)
     if entry.lifecycle is None:
         return
     yield from _stored(entry)

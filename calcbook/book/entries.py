@@ -6,7 +6,9 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 
 from calcbook.book.finding import Found
-from calcbook.book.running import PARALLEL_FROM, conclusion, pool_map
+from calcbook.book.mistakes import PROCESS_ENDED, mistake_words
+from calcbook.book.pool import pool_map
+from calcbook.book.running import PARALLEL_FROM, conclusion
 from calcbook.faults import Fault, Faults
 from calcbook.interface import NotConverged, solve_file
 from calcbook.revisions.lifecycle import Lifecycle, changes_of, life_from, lifecycle_of
@@ -40,14 +42,27 @@ class Entry:
     results: str = ""
     faults: tuple[Fault, ...] = ()
     not_converged: str = ""
+    mistake: str = ""
 
 
 def read_entries(files: Sequence[Found], jobs: int) -> list[Entry]:
     """Every file of a book, in order, over several processes where there are many."""
-    return list(pool_map(read_entry, files, jobs if len(files) >= PARALLEL_FROM else 1))
+    return list(pool_map(read_entry, files, jobs if len(files) >= PARALLEL_FROM else 1, _lost))
+
+
+def _lost(found: Found) -> Entry:
+    return Entry(found, mistake=PROCESS_ENDED)
 
 
 def read_entry(found: Found) -> Entry:
+    """One calculation as an entry; a mistake of calcbook itself is this entry's alone."""
+    try:
+        return _solved_entry(found)
+    except Exception as error:
+        return Entry(found, mistake=mistake_words(error))
+
+
+def _solved_entry(found: Found) -> Entry:
     """One calculation: solved anew, with its life and the texts of record and results file."""
     from calcbook.record import digest_of, markdown, record_blocks, results_text, software_of
 

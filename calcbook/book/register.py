@@ -81,4 +81,6 @@ def _failure(entry: Entry) -> str:
     name = entry.found.path.name
     if entry.not_converged:
         return f"{name}: {entry.not_converged}"
+    if entry.mistake:
+        return f"{name}: a mistake of calcbook itself; `calcbook run {name}` tells it"
     return f"{name}: {len(entry.faults)} fault(s), the first {entry.faults[0].code} on line {entry.faults[0].place.line}"

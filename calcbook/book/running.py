@@ -4,9 +4,10 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
-from typing import TypeVar
 
 from calcbook.book.finding import Found
+from calcbook.book.mistakes import PROCESS_ENDED, mistake_words
+from calcbook.book.pool import pool_map
 from calcbook.chain.outcome import Solved
 from calcbook.faults import Fault, Faults, Place
 from calcbook.files import write_whole
@@ -14,13 +15,15 @@ from calcbook.interface import NotConverged, solve_file
 
 RECORD, RESULTS = "record.md", "results.json"
 PARALLEL_FROM = 8
-Product = TypeVar("Product")
 CONCLUSION_DIGITS = 3
 
 
 @dataclass(frozen=True, slots=True)
 class Outcome:
-    """What became of one file: written, or its faults, or the case that did not converge."""
+    """What became of one file: written, or its faults, or the case that did not converge.
+
+    ``mistake`` says in words what went wrong in calcbook itself.
+    """
 
     name: str
     number: str = ""
@@ -30,10 +33,11 @@ class Outcome:
     open_items: int = 0
     faults: tuple[Fault, ...] = ()
     not_converged: str = ""
+    mistake: str = ""
 
     @property
     def is_written(self) -> bool:
-        return not self.faults and not self.not_converged
+        return not (self.faults or self.not_converged or self.mistake)
 
 
 def run_all(files: Sequence[Found], jobs: int, tell: Callable[[Outcome], None]) -> list[Outcome]:
@@ -44,7 +48,7 @@ def run_all(files: Sequence[Found], jobs: int, tell: Callable[[Outcome], None]) 
     taken: dict[str, str] = {}
     outcomes = []
     for solved in _solved(files, jobs):
-        outcome = solved if isinstance(solved, Outcome) else _written(solved, taken)
+        outcome = solved if isinstance(solved, Outcome) else written(solved, taken)
         outcomes.append(outcome)
         tell(outcome)
     return outcomes
@@ -61,30 +65,26 @@ class Texts:
 
 
 def _solved(files: Sequence[Found], jobs: int) -> Iterator[Outcome | Texts]:
-    yield from pool_map(_texts, files, jobs if len(files) >= PARALLEL_FROM else 1)
+    yield from pool_map(solved_texts, files, jobs if len(files) >= PARALLEL_FROM else 1, _lost)
 
 
-def pool_map(work: Callable[[Found], Product], items: Sequence[Found], jobs: int) -> Iterator[Product]:
-    """The products of items in order, over ``jobs`` processes; in this one where one is enough."""
-    if jobs == 1:
-        yield from map(work, items)
-        return
-    import multiprocessing
-    from concurrent.futures import ProcessPoolExecutor
-
-    context = multiprocessing.get_context("spawn")
-    with ProcessPoolExecutor(max_workers=jobs, mp_context=context) as pool:
-        yield from pool.map(work, items, chunksize=max(1, min(16, len(items) // (4 * jobs))))
+def _lost(found: Found) -> Outcome | Texts:
+    return Outcome(found.name, mistake=PROCESS_ENDED)
 
 
-def _texts(found: Found) -> Outcome | Texts:
-    """Solve one file and make its texts; nothing is written yet."""
+def solved_texts(found: Found) -> Outcome | Texts:
+    """Solve one file and make its texts; nothing is written yet.
+
+    A mistake of calcbook itself is this file's outcome, so that the others of its book are written.
+    """
     try:
         return texts_of(found, solve_file(found.path, found.name))
     except Faults as faults:
         return Outcome(found.name, faults=faults.faults)
     except NotConverged as error:
         return Outcome(found.name, not_converged=str(error))
+    except Exception as error:
+        return Outcome(found.name, mistake=mistake_words(error))
 
 
 def texts_of(found: Found, solved: Solved) -> Texts:
@@ -119,7 +119,7 @@ def conclusion(solved: Solved, name: str) -> str:
     return in_report_unit(result.value, result.kind, solved.chain.calculation.report, CONCLUSION_DIGITS)
 
 
-def _written(texts: Texts, taken: dict[str, str]) -> Outcome:
+def written(texts: Texts, taken: dict[str, str]) -> Outcome:
     """Write the record and the results of one calculation, unless its number is taken."""
     number = texts.outcome.number
     first = taken.setdefault(number.casefold(), texts.found.name)

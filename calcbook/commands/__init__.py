@@ -3,7 +3,7 @@
 May import: every room. Must never: hold logic that another caller would want.
 
 Exit codes: 0 written, open items or not; 1 findings (``verify``); 2 fault or usage; 3 a calculation did
-not converge.
+not converge; 4 a mistake of calcbook itself in a calculation; 130 interrupted.
 """
 
 from __future__ import annotations
@@ -14,6 +14,7 @@ import click
 
 COMMANDS = (
     "run",
+    "watch",
     "new",
     "library",
     "verify",

@@ -60,3 +60,5 @@ def command(folder: Path, output: Path | None, form: str) -> None:
             sys.exit(2)
     if any(entry.faults for entry in entries):
         sys.exit(2)
+    if any(entry.mistake for entry in entries):
+        sys.exit(4)

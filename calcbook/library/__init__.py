@@ -50,29 +50,41 @@ class Library:
         """A method card by id. Raises ``Faults``: method-unknown, and every fault of the card."""
         if name not in self._methods:
             path, house = self._path("methods", name)
-            self._methods[name] = read_method(path, house)
+            # A built-in card is the same for every book: it is read once a process.
+            own = house or self is _built_in
+            self._methods[name] = read_method(path, house) if own else _built_in.method(name)
         return self._methods[name]
 
     def situation(self, name: str) -> Situation:
         """A situation card by id. Raises ``Faults``: situation-unknown, and every fault of the card."""
         if name not in self._situations:
-            self._situations[name] = read_situation(self._path("situations", name)[0])
+            path, house = self._path("situations", name)
+            own = house or self is _built_in
+            self._situations[name] = read_situation(path) if own else _built_in.situation(name)
         return self._situations[name]
 
     def material(self, name: str) -> Material:
         """A material card by id. Raises ``Faults``: material-unknown, and every fault of the card."""
         if name not in self._materials:
             path, house = self._path("materials", name)
-            self._materials[name] = read_material(path, house)
+            own = house or self is _built_in
+            self._materials[name] = read_material(path, house) if own else _built_in.material(name)
         return self._materials[name]
 
     def program(self, name: str) -> Program:
         """The program of a method, with its dimensions checked."""
         if name not in self._programs:
-            program = build_program(self.method(name), self.method)
-            check_dimensions(program)
-            self._programs[name] = program
+            self._programs[name] = self._built(name)
         return self._programs[name]
+
+    def _built(self, name: str) -> Program:
+        card = self.method(name)
+        # A built-in card uses built-in cards alone: the library looks for them before those of a book.
+        if self is not _built_in and not card.house:
+            return _built_in.program(name)
+        program = build_program(card, self.method)
+        check_dimensions(program)
+        return program
 
     def names(self, kind: str) -> tuple[str, ...]:
         """The ids of every card of a kind (methods, situations, materials), in alphabetical order."""
@@ -124,22 +136,22 @@ def _first_key(path: Path) -> str:
     return first.partition(":")[0].strip()
 
 
-_library = Library()
+_built_in = Library()
 
 
 def load_method(name: str) -> Method:
     """A built-in method card by id."""
-    return _library.method(name)
+    return _built_in.method(name)
 
 
 def load_situation(name: str) -> Situation:
     """A built-in situation card by id."""
-    return _library.situation(name)
+    return _built_in.situation(name)
 
 
 def load_material(name: str) -> Material:
     """A built-in material card by id."""
-    return _library.material(name)
+    return _built_in.material(name)
 
 
 def evaluate_method(
@@ -150,7 +162,7 @@ def evaluate_method(
     A use symbol (such as ``f``) may be given directly. Flags take True/False or yes/no, choices their
     word. Raises ``KeyError`` for a symbol that the card does not take.
     """
-    find = (library or _library).method
+    find = (library or _built_in).method
     overridden = tuple(use.symbol for use in card.uses if use.symbol in given)
     program = build_program(card, find, overridden)
     values = evaluate_program(program, bind_given(program, given))

@@ -1,0 +1,175 @@
+"""Watch calculations: calculate each anew as soon as a file that it rests on changes.
+
+What a calculation rests on is taken generously, as a record made once too often costs nothing: its own file
+and sign-offs, the settings and cards of its book, the table files it names, and, where it takes a given from
+another calculation, every calculation file beside it and the issued copies of the book. Files are looked at
+by their size and time of change, again and again; a file that is being written is waited for.
+"""
+
+from __future__ import annotations
+
+import os
+import re
+import time
+from collections.abc import Callable, Iterable, Iterator, Sequence
+from dataclasses import dataclass, field
+from pathlib import Path
+
+from calcbook.book.finding import BESIDE, Found, find_calculations
+from calcbook.book.running import Outcome, solved_texts, written
+from calcbook.calcfile import BOOK_FILE
+from calcbook.faults import Collector, Faults
+from calcbook.interface import HOUSE_CARDS, forget_house_cards
+from calcbook.links import ISSUED
+
+# Between two looks, in seconds: a look at a hundred files takes less than a millisecond.
+PERIOD, PERIOD_PER_FILE = 0.015, 0.0001
+# A file may be caught half written: it is read when it has not changed for so long.
+SETTLED = 0.004
+TABLE_NAMED = re.compile(r"[^\n\"',:{}\[\]]+\.csv\b")
+LINKED = re.compile(r"\bfrom *:")
+
+# What tells one state of a file from another; None where there is none.
+Mark = tuple[int, int, int] | None
+Marks = dict[Path, Mark]
+Tell = Callable[[Outcome], None]
+
+
+@dataclass
+class _Watched:
+    """One calculation under watch, and the marks of all it rests on as they were before it was read."""
+
+    found: Found
+    marks: Marks = field(default_factory=dict)
+    number: str = ""
+
+
+class Watch:
+    """Calculations kept current. ``tell`` is called with every outcome, ``tell_fault`` where no file can be
+    found or a book's settings cannot be read."""
+
+    def __init__(
+        self, paths: Sequence[Path], output: Path | None, tell: Tell, tell_fault: Callable[[Faults], None]
+    ):
+        self.paths = paths
+        self.output = output
+        self.tell = tell
+        self.tell_fault = tell_fault
+        self.watched: dict[Path, _Watched] = {}
+        self.listed: Marks = {}
+        self.fault = ""
+        self.cards: dict[Path, Marks] = {}
+
+    def run(self) -> None:
+        """Calculate everything once, then look for changes until interrupted (``KeyboardInterrupt``)."""
+        while True:
+            self.look()
+            files = sum(len(item.marks) for item in self.watched.values())
+            time.sleep(PERIOD + PERIOD_PER_FILE * files)
+
+    def look(self) -> None:
+        """Look once; calculate what changed since the last look."""
+        self._find()
+        for item in list(self.watched.values()):
+            if item.marks and item.marks == _marks(item.marks):
+                continue
+            before = item.marks
+            item.marks = _settled(item)
+            if item.marks != before:
+                self._calculate(item)
+
+    def _find(self) -> None:
+        """The calculation files, found again where a folder or a book's settings changed."""
+        places = set(self.paths)
+        places |= {(path if path.is_dir() else path.parent) / BOOK_FILE for path in self.paths}
+        listed = _marks(places)
+        if listed == self.listed:
+            return
+        self.listed = listed
+        collector = Collector()
+        try:
+            files = find_calculations(self.paths, self.output, collector)
+            collector.stop_if_any()
+        except Faults as faults:
+            if str(faults) != self.fault:
+                self.tell_fault(faults)
+            self.fault = str(faults)
+            return
+        self.fault = ""
+        known = {found.path: found for found in files}
+        for path in [path for path in self.watched if path not in known]:
+            del self.watched[path]
+        for path, found in known.items():
+            self.watched.setdefault(path, _Watched(found)).found = found
+
+    def _calculate(self, item: _Watched) -> None:
+        self._forget_changed_cards(item.found.path.parent / HOUSE_CARDS)
+        made = solved_texts(item.found)
+        if isinstance(made, Outcome):
+            self.tell(made)
+            return
+        taken = {
+            other.number.casefold(): other.found.name
+            for other in self.watched.values()
+            if other is not item and other.number
+        }
+        outcome = written(made, taken)
+        item.number = outcome.number
+        self.tell(outcome)
+
+    def _forget_changed_cards(self, house: Path) -> None:
+        """Have the cards of a book read again where one changed."""
+        marks = _marks(_files(house, "*.yaml"))
+        if self.cards.setdefault(house, marks) != marks:
+            self.cards[house] = marks
+            forget_house_cards()
+
+
+def _settled(item: _Watched) -> Marks:
+    """The marks of all that a calculation rests on, once they stand still."""
+    marks = _marks(_rests_on(item))
+    while True:
+        time.sleep(SETTLED)
+        again = _marks(_rests_on(item))
+        if again == marks:
+            return marks
+        marks = again
+
+
+def _rests_on(item: _Watched) -> Iterator[Path]:
+    """The files and folders whose change may change a record."""
+    found, path, folder = item.found, item.found.path, item.found.path.parent
+    yield path
+    yield path.with_name(f"{path.stem}.signoffs.yaml")
+    yield folder / BOOK_FILE
+    yield folder / HOUSE_CARDS
+    yield from _files(folder / HOUSE_CARDS, "*.yaml")
+    if item.number:
+        yield found.output / item.number / ISSUED
+    try:
+        text = path.read_text(encoding="utf-8", errors="replace")
+    except OSError:
+        return
+    for name in TABLE_NAMED.findall(text):
+        yield folder / name.strip()
+    if LINKED.search(text):
+        yield folder
+        yield from (other for other in _files(folder, "*.yaml") if not other.name.endswith(BESIDE[1:]))
+        yield from _files(folder, "*.csv")
+        yield from sorted(found.output.glob(f"*/{ISSUED}"))
+
+
+def _files(folder: Path, pattern: str) -> list[Path]:
+    return sorted(folder.glob(pattern))
+
+
+def _marks(paths: Iterable[Path]) -> Marks:
+    return {path: _mark(path) for path in paths}
+
+
+def _mark(path: Path) -> Mark:
+    try:
+        state = os.stat(path)
+    except OSError:
+        return None
+    return (state.st_mtime_ns, state.st_size, state.st_ino)
