@@ -1,14 +1,16 @@
 """What the backend once answered, kept on disk so that a repeat run repeats the same numbers.
 
 One file per fluid, backend version, pressure and phase, in the user's cache folder (``CALCBOOK_CACHE``
-overrides it). A file is a line with a checksum and a JSON text; floats survive it bit for bit. A file
-that is damaged, of another fluid or of another format is not used and is replaced; a folder that
-cannot be written costs time, never an answer.
+overrides it). A file is a line with the mark of the code that made it and a checksum, and a JSON text;
+floats survive it bit for bit. A file that is damaged, of another fluid or backend version, or made by
+other code (other nodes, another agreement) is not used and is replaced; a folder that cannot be written
+costs time, never an answer.
 """
 
 from __future__ import annotations
 
 import contextlib
+import functools
 import hashlib
 import json
 import os
@@ -17,8 +19,23 @@ import tempfile
 from pathlib import Path
 from typing import Any
 
-FORMAT = "calcbook-properties-2"
+FORMAT = "calcbook-properties-3"
+# The files whose text decides what is kept: which temperatures are asked, how, and when a series is taken.
+MAKERS = ("backed.py", "backend.py", "curves.py", "humid.py", "series.py")
 DIRECT_LIMIT = 20_000  # direct answers kept per property and file: bounds the file to about 1 MB
+
+
+@functools.cache
+def made_by() -> str:
+    """The mark of the code that makes the answers; answers of other code are stale."""
+    mark = hashlib.sha256()
+    for name in MAKERS:
+        mark.update(Path(__file__).with_name(name).read_bytes().replace(b"\r\n", b"\n"))
+    return mark.hexdigest()[:16]
+
+
+def _header(text: bytes) -> bytes:
+    return f"{FORMAT} {made_by()} {hashlib.sha256(text).hexdigest()}".encode()
 
 
 def folder() -> Path:
@@ -68,7 +85,7 @@ class Store:
             allow_nan=False,
         ).encode()
         with contextlib.suppress(OSError):
-            _replace(self.path, f"{FORMAT} {hashlib.sha256(text).hexdigest()}\n".encode() + text)
+            _replace(self.path, _header(text) + b"\n" + text)
 
     def _bounded(self) -> dict[str, dict[str, float | None]]:
         return {name: dict(sorted(answers.items())[:DIRECT_LIMIT]) for name, answers in self.direct.items()}
@@ -90,7 +107,7 @@ def _read(path: Path, key: str) -> dict[str, Any] | None:
         header, _, text = path.read_bytes().partition(b"\n")
     except OSError:
         return None
-    if header != f"{FORMAT} {hashlib.sha256(text).hexdigest()}".encode():
+    if header != _header(text):
         return None
     kept = json.loads(text)
     parts = ("facts", "series", "direct")

@@ -2,13 +2,15 @@
 
 import json
 import os
+import re
 import subprocess
 import sys
+from pathlib import Path
 
 import numpy as np
 import pytest
 
-from calcbook.properties import PROPERTIES, clear_memory, pure
+from calcbook.properties import PROPERTIES, backend_version, clear_memory, pure
 from calcbook.properties import store as kept
 
 PROGRAM = """
@@ -107,7 +109,21 @@ def _stale(path):
     path.write_bytes(b"calcbook-properties-0" + content[content.index(b" ") :])
 
 
-@pytest.mark.parametrize("harm", [_truncate, _flip, _empty, _binary, _foreign, _stale])
+def _made_otherwise(path):
+    """A sound file that other code made: other nodes, say, or another agreement."""
+    kind, mark, rest = path.read_bytes().split(b" ", 2)
+    path.write_bytes(b" ".join((kind, mark[::-1], rest)))
+
+
+def _other_version(path):
+    """A sound file of another backend version under the name of this one."""
+    text = path.read_bytes().partition(b"\n")[2].replace(backend_version().encode(), b"6.0.0")
+    path.write_bytes(kept._header(text) + b"\n" + text)
+
+
+@pytest.mark.parametrize(
+    "harm", [_truncate, _flip, _empty, _binary, _foreign, _stale, _made_otherwise, _other_version]
+)
 def test_a_harmed_file_is_not_used_and_is_made_anew(empty_cache, harm):
     first = _answers()
     sound = {path: path.read_bytes() for path in _files(empty_cache)}
@@ -155,9 +171,39 @@ def test_two_processes_add_to_one_file(empty_cache):
 def test_files_name_backend_version_pressure_and_phase(empty_cache):
     _answers()
     keys = [json.loads(path.read_bytes().partition(b"\n")[2])["key"] for path in _files(empty_cache)]
-    from calcbook.properties import backend_version
-
     assert f"HEOS Water {backend_version()} {(4e5).hex()} liquid" in keys
+
+
+def test_another_backend_version_asks_anew_and_leaves_the_old_files(empty_cache, monkeypatch):
+    from calcbook.properties import backend
+
+    _answers()
+    old = {path: path.read_bytes() for path in _files(empty_cache)}
+    # Coefficients of the old version that must not be taken for those of the new one.
+    monkeypatch.setattr(backend, "backend_version", lambda: "99.0")
+    asked = []
+    at_pressure = backend.at_pressure
+    monkeypatch.setattr(backend, "at_pressure", lambda *place: asked.append(place) or at_pressure(*place))
+    clear_memory()
+    _answers()
+    assert len(asked) > 20
+    new = set(_files(empty_cache)) - set(old)
+    assert len(new) == len(old)
+    assert all("99.0" in json.loads(path.read_bytes().partition(b"\n")[2])["key"] for path in new)
+    assert {path: path.read_bytes() for path in old} == old
+
+
+def test_every_file_that_makes_answers_is_in_the_mark():
+    folder = Path(kept.__file__).parent
+    makers = {
+        path.name
+        for path in folder.glob("*.py")
+        if re.search(
+            r"\b(Curve|Family|store)\(|state\.update|def (fit|nodes)\b", path.read_text(encoding="utf-8")
+        )
+    }
+    assert makers - {"store.py"} <= set(kept.MAKERS)
+    assert kept.made_by() != "" and all((folder / name).is_file() for name in kept.MAKERS)
 
 
 def test_the_user_folder_is_used_where_none_is_stated(monkeypatch):
