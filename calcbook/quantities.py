@@ -1088,6 +1088,7 @@ def display_unit(kind: QuantityKind, units: Literal["SI", "US customary"]) -> st
     return next(alike, kind.unit)
 
 
+@functools.lru_cache(maxsize=1024)
 def unit_display(unit_text: str) -> str:
     """A unit as it is printed, after the rules of the SI Brochure: ``W/(m²·K)``, ``kg/m³``, ``°C``.
 
@@ -1124,7 +1125,7 @@ def si_unit(dimension: Dimension) -> str:
 
     Exponents that the unit grammar does not read (thirds, powers above 4) are written all the same.
     """
-    if dimension == DIMENSIONLESS:
+    if dimension is DIMENSIONLESS or dimension == DIMENSIONLESS:
         return "1"
     usual = _si_texts().get(dimension)
     return usual or _base_product(dimension)

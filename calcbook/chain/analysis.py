@@ -11,7 +11,7 @@ import numpy as np
 
 from calcbook.calcfile.calculation import Criterion
 from calcbook.chain.allowance import largest_allowances
-from calcbook.chain.checks import apply_acceptances, evaluate_check
+from calcbook.chain.checks import apply_acceptances, evaluate_check, state_of_check
 from calcbook.chain.circuit import branch_coefficient
 from calcbook.chain.completing import completed
 from calcbook.chain.duty import OWNER as DUTY
@@ -850,8 +850,10 @@ class _Analysis:
     def _out_of_range(self, other: Candidate, solution: Solution) -> str:
         """The first range or stop limit of a method that is not held, in words."""
         for limit in other.checks:
-            check = evaluate_check(limit, solution, "", self.dimensions)
-            if check.level in ("stop", "range") and check.state in ("outside", "not evaluable"):
+            if limit.limit.level not in ("stop", "range"):
+                continue
+            if state_of_check(limit, solution) in ("outside", "not evaluable"):
+                check = evaluate_check(limit, solution, "", self.dimensions)
                 return f"outside its range: {check.figure}, limit {check.limit}"
         return ""
 

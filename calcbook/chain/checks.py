@@ -35,18 +35,8 @@ def evaluate_check(
     check: ChainCheck, solution: Solution, case: str, dimensions: Mapping[str, tuple]
 ) -> CheckResult:
     """One limit in one condition of a single record."""
-    values = solution.values
-    arguments = {symbol: values[bound] for symbol, bound in check.inputs.items()}
-    unknown = any(
-        not np.all(np.isfinite(np.asarray(value, dtype=float)))
-        for value in arguments.values()
-        if isinstance(value, np.ndarray)
-    )
-    state = "not evaluable"
-    if not all(_counts(one.relation, one.inputs, values) for one in check.counts_when):
-        state = "not counting"
-    elif not unknown:
-        state = "within" if bool(evaluate(check.limit.that, arguments)) else "outside"
+    state = state_of_check(check, solution)
+    arguments = {symbol: solution.values[bound] for symbol, bound in check.inputs.items()}
     local = {symbol: dimensions.get(bound, DIMENSIONLESS) for symbol, bound in check.inputs.items()}
     figure, limit, value, unit = _figure_and_limit(
         check.limit.that.tree, arguments, local, state == "not evaluable"
@@ -69,6 +59,18 @@ def evaluate_check(
         check.limit.source,
         check.limit.standing,
     )
+
+
+def state_of_check(check: ChainCheck, solution: Solution) -> str:
+    """How a limit stands in one condition of a single record: within, outside, not evaluable, not counting."""
+    values = solution.values
+    if not all(_counts(one.relation, one.inputs, values) for one in check.counts_when):
+        return "not counting"
+    arguments = {symbol: values[bound] for symbol, bound in check.inputs.items()}
+    for value in arguments.values():
+        if isinstance(value, np.ndarray) and not np.isfinite(np.asarray(value, dtype=float)).all():
+            return "not evaluable"
+    return "within" if bool(evaluate(check.limit.that, arguments)) else "outside"
 
 
 def _in_words(check: ChainCheck, figure: str, limit: str, value: float) -> tuple[str, str]:

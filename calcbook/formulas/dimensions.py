@@ -42,6 +42,7 @@ _CONSTANT_DIMENSIONS = {
 _WRITTEN_ORDER = ((1, "kg"), (0, "m"), (2, "s"), (3, "K"), (4, "mol"))
 _OPERATION_WORDS = {"+": "a sum joins", "-": "a difference joins"}
 _SUPPORTED_EXPONENT = 1_000
+_MOST_KEPT = 64  # answers remembered with one tree
 
 
 def dimension(relation: Relation | Node, dimensions: Mapping[str, Dimension]) -> Dimension:
@@ -51,7 +52,17 @@ def dimension(relation: Relation | Node, dimensions: Mapping[str, Dimension]) ->
     ``RelationFault`` ``dimension-slip`` where quantities that cannot be joined are joined, KeyError for a
     symbol without dimension.
     """
-    return _found(tree_of(relation), dimensions) or DIMENSIONLESS
+    tree = tree_of(relation)
+    given = tuple(dimensions[name] for name in tree.symbols)
+    kept = tree.memory.setdefault(dimension, {})
+    # Known again by the objects, which are those of the vocabulary; they are kept, so no other can take their place.
+    key = tuple(map(id, given))
+    if key not in kept:
+        if len(kept) >= _MOST_KEPT:
+            kept.clear()
+        kept[key] = (given, _found(tree, dimensions) or DIMENSIONLESS)
+    found: Dimension = kept[key][1]
+    return found
 
 
 def dimension_text(value: Dimension) -> str:
@@ -104,6 +115,8 @@ def _found(node: Node, dimensions: Mapping[str, Dimension]) -> Dimension | None:
 
 
 def _combined(first: Dimension, second: Dimension, factor: Fraction) -> Dimension:
+    if second is DIMENSIONLESS:
+        return first
     m, kg, s, kelvin, mol = (a + factor * b for a, b in zip(first, second, strict=True))
     return (m, kg, s, kelvin, mol)
 

@@ -68,16 +68,32 @@ def evaluate(relation: Relation | Node, values: Mapping[str, Any]) -> NDArray[An
     condition; what has no value is NaN or infinite, without a warning. Raises KeyError for a missing symbol.
     """
     tree = tree_of(relation)
-    frame = _Frame({name: _array(values[name]) for name in tree.symbols})
+    step, symbols, kind, may_borrow = tree.memory.get(_prepared) or _prepared(tree)
+    frame = _Frame({name: _array(values[name]) for name in symbols})
     with np.errstate(all="ignore"):
-        result = _compiled(tree)(frame)
-    array = np.asarray(result, dtype=bool if is_truth(tree) else np.float64)
-    borrowed = not array.flags.writeable or any(array is value for value in frame.values.values())
-    return array.copy() if borrowed else array
+        result = step(frame)
+    array: NDArray[Any] = np.asarray(result, dtype=kind)
+    if may_borrow and (not array.flags.writeable or any(array is value for value in frame.values.values())):
+        return array.copy()
+    return array
+
+
+def _prepared(tree: Node) -> tuple[_Step, tuple[str, ...], type, bool]:
+    """What an evaluation needs of a tree: its step, its symbols, its kind, and whether the result may be a
+    value or a constant as it was handed in, which is then copied."""
+    may_borrow = not (tree.symbols and isinstance(tree, Binary | Negate | Compare))
+    prepared = (_compiled(tree), tree.symbols, bool if is_truth(tree) else np.float64, may_borrow)
+    tree.memory[_prepared] = prepared
+    return prepared
+
+
+_FLOATS = np.dtype(np.float64)
 
 
 def _array(value: Any) -> Any:
     """A value as contiguous floats (strided memory may take another inner loop); a table column as it is."""
+    if type(value) is np.ndarray and value.dtype is _FLOATS and value.flags.c_contiguous:
+        return value
     if isinstance(value, float):
         return np.array(value)
     if hasattr(value, "mean") and hasattr(value, "slope"):

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import functools
 import math
 import re
 from decimal import ROUND_HALF_EVEN, Context, Decimal
@@ -15,6 +16,7 @@ _GROUPED_FROM = 5
 _EXPONENT = re.compile(r"[eE]")
 
 
+@functools.lru_cache(maxsize=16384)
 def number_text(value: float, digits: int) -> str:
     """``value`` with ``digits`` significant digits, rounded from its shortest exact text, half to even.
 

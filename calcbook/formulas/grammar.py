@@ -8,6 +8,7 @@ and it evaluates nothing: ``9**9**9**9`` is four numbers in a tree. The preceden
 from __future__ import annotations
 
 import difflib
+import functools
 import keyword
 import re
 import unicodedata
@@ -119,8 +120,12 @@ def parse_relation(text: str) -> Relation:
     return Relation(text, target.text, tree, tree.symbols)
 
 
+@functools.lru_cache(maxsize=1024)
 def parse_expression(text: str) -> Relation:
-    """A bare right-hand side or condition to a ``Relation`` without target. Raises ``RelationFault``."""
+    """A bare right-hand side or condition to a ``Relation`` without target. Raises ``RelationFault``.
+
+    One text gives one relation, with what its tree remembers.
+    """
     tree = _Parser(_typed_tokens(text), TYPED, comma_before_else=False).whole()
     return Relation(text, None, tree, tree.symbols)
 

@@ -52,7 +52,11 @@ def write(relation: Relation | Node, names: Mapping[str, str] | None = None) -> 
 
     ``parse_written`` reads the line back to the same tree.
     """
-    given = names or {}
+    tree, given = tree_of(relation), names or {}
+    key = (write, *given.items())
+    kept: str | None = tree.memory.get(key)
+    if kept is not None:
+        return kept
 
     def leaf(node: Node) -> _Written:
         if isinstance(node, Number):
@@ -62,7 +66,7 @@ def write(relation: Relation | Node, names: Mapping[str, str] | None = None) -> 
         name = _symbol_name(node)
         return given.get(name, written_name(name)), _ATOM
 
-    return _written(tree_of(relation), leaf)[0]
+    return tree.memory.setdefault(key, _written(tree, leaf)[0])
 
 
 def write_with_values(relation: Relation | Node, values: Mapping[str, Any], result: str | None) -> str:

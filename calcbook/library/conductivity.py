@@ -51,6 +51,8 @@ class ConductivityTable:
         # Within one straight piece the mean is the middle value; it also avoids a difference of near equals.
         same = self._piece(first) == self._piece(second)
         middle = self.value(0.5 * (first + second))
+        if same.all():
+            return middle
         with np.errstate(divide="ignore", invalid="ignore"):
             quotient = (self._integral_to(second) - self._integral_to(first)) / apart
         return np.where(same | (apart == 0.0), middle, quotient)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import functools
 from collections.abc import Callable
 from dataclasses import dataclass, field
 from typing import Any
@@ -76,6 +77,10 @@ class _BackedAtPressure(FluidAtPressure):
     phase: Phase | None
 
     def _facts(self) -> dict[str, Any]:
+        return self._known_facts
+
+    @functools.cached_property
+    def _known_facts(self) -> dict[str, Any]:
         return _kept_facts(self.fluid.code, "any pressure", lambda: backend.facts(self.fluid.code))
 
     def _state(self) -> states.Known:
@@ -133,12 +138,15 @@ class IncompressibleAtPressure(_BackedAtPressure):
             found += (Finding("vapour-is-liquid", "fault", message, {"temperature": float(temperature)}),)
         return found
 
-    def _flat(self, property_name: str, temperatures: Array, sloped: bool) -> Array:
+    @functools.cached_property
+    def _line(self) -> Curve:
         code = self.fluid.code
         low, high = self.limits()
         family = Family(PROPERTIES, lambda temperature: backend.incompressible(code, temperature), AGREEMENT)
-        curve = Curve(low, high, store(f"{code.text} incompressible"), (family,))
-        return _along(curve, property_name, temperatures, sloped)
+        return Curve(low, high, store(f"{code.text} incompressible"), (family,))
+
+    def _flat(self, property_name: str, temperatures: Array, sloped: bool) -> Array:
+        return _along(self._line, property_name, temperatures, sloped)
 
 
 @dataclass(frozen=True)
@@ -153,6 +161,10 @@ class Saturated(_BackedAtPressure):
 
     def curve(self) -> Curve:
         """This side from the triple point to just below the critical point."""
+        return self._side_curve
+
+    @functools.cached_property
+    def _side_curve(self) -> Curve:
         code, quality = self.fluid.code, 1.0 if self.phase == "gas" else 0.0
         low, high = self.limits()
         names = (*PROPERTIES, SATURATION_PRESSURE)
@@ -244,6 +256,7 @@ class PureAtPressure(_BackedAtPressure):
     pressure: float
     phase: Phase | None
     _cut: dict[str, Any] = field(init=False, repr=False, compare=False)
+    _kept_curves: dict[str, Curve] = field(init=False, repr=False, compare=False, default_factory=dict)
     has_vapour_pressure = True
 
     def __post_init__(self) -> None:
@@ -321,7 +334,10 @@ class PureAtPressure(_BackedAtPressure):
     def _flat(self, property_name: str, temperatures: Array, sloped: bool) -> Array:
         result = np.full(temperatures.shape, np.nan)
         for chosen, curve, _ in self._curves(temperatures):
-            result[chosen] = _along(curve, property_name, temperatures[chosen], sloped)
+            if chosen.all():
+                return _along(curve, property_name, temperatures, sloped)
+            if chosen.any():
+                result[chosen] = _along(curve, property_name, temperatures[chosen], sloped)
         return result
 
     def _asked(self, name: str, temperatures: Array, pressures: Array, outside: Outside) -> Array:
@@ -382,6 +398,12 @@ class PureAtPressure(_BackedAtPressure):
         return [(below, liquid, False), (above, gas, False)]
 
     def _curve(self, phase: str, low: float, high: float) -> Curve:
+        """The curve of a phase; its ends follow from the phase, so each is made once."""
+        if phase not in self._kept_curves:
+            self._kept_curves[phase] = self._made_curve(phase, low, high)
+        return self._kept_curves[phase]
+
+    def _made_curve(self, phase: str, low: float, high: float) -> Curve:
         code, pressure = self.fluid.code, self.pressure
         values = Family(PROPERTIES, lambda at: backend.at_pressure(code, pressure, phase, at), AGREEMENT)
         slopes = Family(
@@ -392,7 +414,15 @@ class PureAtPressure(_BackedAtPressure):
         return Curve(low, high, store(f"{code.text} {pressure.hex()} {phase}"), (values, slopes))
 
     def _side(self, phase: Phase) -> Saturated:
-        return Saturated(self.fluid, None, phase)
+        return self._liquid_side if phase == "liquid" else self._gas_side
+
+    @functools.cached_property
+    def _liquid_side(self) -> Saturated:
+        return Saturated(self.fluid, None, "liquid")
+
+    @functools.cached_property
+    def _gas_side(self) -> Saturated:
+        return Saturated(self.fluid, None, "gas")
 
     def _state(self) -> states.Known:
         low, high = self.limits()
@@ -413,8 +443,10 @@ def _kept_facts(code: Code, place: str, ask: Callable[[], dict[str, Any]]) -> di
 
 def _along(curve: Curve, name: str, temperatures: Array, sloped: bool) -> Array:
     """Values or slopes on a curve, NaN outside its interval."""
-    result = np.full(temperatures.shape, np.nan)
     inside = (temperatures >= curve.low) & (temperatures <= curve.high)
     ask = curve.slope if sloped else curve.value
+    if inside.all():
+        return ask(name, temperatures)
+    result = np.full(temperatures.shape, np.nan)
     result[inside] = ask(name, temperatures[inside])
     return result

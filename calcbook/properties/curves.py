@@ -53,6 +53,8 @@ class Curve:
         return self._walk(name, temperatures, sloped=True)
 
     def _walk(self, name: str, temperatures: Array, sloped: bool) -> Array:
+        if temperatures.size == 1:
+            return self._walk_one(name, temperatures, sloped)
         result = np.empty_like(temperatures)
         waiting = [("", self.low, self.high, np.arange(temperatures.size))]
         while waiting:
@@ -72,10 +74,25 @@ class Curve:
         self.store.save()
         return result
 
+    def _walk_one(self, name: str, temperature: Array, sloped: bool) -> Array:
+        """The same walk for one sample, which has one way through the panels."""
+        at = temperature.item()
+        path, low, high = "", self.low, self.high
+        while (coefficients := self._panel(name, path, low, high)) is None and len(path) < DEPTH:
+            middle = 0.5 * (low + high)
+            path, low, high = (path + "0", low, middle) if at < middle else (path + "1", middle, high)
+        if coefficients is not None:
+            result = _from_series(name, coefficients, low, high, temperature, sloped)
+        else:
+            result = self.direct(name, temperature, sloped)
+        self.store.save()
+        return result
+
     def _panel(self, name: str, path: str, low: float, high: float) -> list[float] | None:
-        panels = self.store.series.setdefault(name, {})
-        if path not in panels:
+        panels = self.store.series.get(name)
+        if panels is None or path not in panels:
             self._make(self._family(name), path, low, high)
+            panels = self.store.series[name]
         return panels[path]
 
     def _make(self, family: Family, path: str, low: float, high: float) -> None:

@@ -6,6 +6,7 @@ that was handed in, apart from what ``visible`` changes.
 
 from __future__ import annotations
 
+import functools
 import re
 import unicodedata
 from collections.abc import Iterable
@@ -69,7 +70,7 @@ def visible(text: str) -> str:
 
 
 def _characters(text: str) -> str:
-    if text.isascii() and text.isprintable():
+    if text.isprintable():
         return text
     return "".join(
         f"U+{ord(character):04X}" if unicodedata.category(character) in _HIDDEN else character
@@ -77,6 +78,7 @@ def _characters(text: str) -> str:
     )
 
 
+@functools.lru_cache(maxsize=8192)
 def escaped(text: str) -> str:
     """A text for a cell or a heading: a Markdown reader reads back that text and nothing else."""
     line = visible(text)
