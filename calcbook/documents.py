@@ -23,7 +23,13 @@ MAXIMUM_BYTES = 2_000_000
 MAXIMUM_DEPTH = 40
 MAXIMUM_SYNTAX_FAULTS = 20
 MENDED_UP_TO = 100_000  # characters: reading on after a fault of syntax reads the whole text again
-_LOADER = getattr(yaml, "CSafeLoader", yaml.SafeLoader)
+
+
+class _Loader(getattr(yaml, "CSafeLoader", yaml.SafeLoader)):  # type: ignore[misc]
+    """The parser without its guessing: every scalar is a text, and no pattern of a number or date is tried."""
+
+    def resolve(self, kind: type[yaml.Node], value: str | None, implicit: object) -> str:
+        return "tag:yaml.org,2002:str"
 
 
 @dataclass(frozen=True, slots=True)
@@ -164,7 +170,7 @@ def _refuse_characters(text: str, name: str, lines: list[str]) -> None:
 
 
 def _compose(text: str) -> list[yaml.Node]:
-    loader = _LOADER(text)
+    loader = _Loader(text)
     nodes: list[yaml.Node] = []
     try:
         while loader.check_node() and len(nodes) < 2:

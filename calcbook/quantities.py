@@ -759,6 +759,7 @@ def _decimal_comma(text: str, start: int) -> QuantityFault:
     return _number_fault("number-decimal-comma", message, text, start, nearest)
 
 
+@functools.lru_cache(maxsize=2048)
 def _read(text: str) -> _Reading:
     number_text, number_start, unit_text, unit_start = _split(text)
     number = _exact(number_text, text, number_start)

@@ -47,15 +47,21 @@ FOULING_WAYS = ", or deposit: {thickness: …, conductivity: …}, or growth: {m
 WALL_CARDS = {"tube": "wall-cylinder", "plane": "wall-plane", "sphere": "wall-sphere"}
 
 
-def build(calculation: Calculation, library: Library, collector: Collector) -> Chain | None:
-    """The chain of a calculation. Faults go to the collector; None when too little is left to build."""
-    return _Builder(calculation, library, collector).chain()
+def build(
+    calculation: Calculation, library: Library, collector: Collector, cross_check: bool = True
+) -> Chain | None:
+    """The chain of a calculation. Faults go to the collector; None when too little is left to build.
+
+    Without ``cross_check`` the other methods of each situation, which only a record shows, are not laid out.
+    """
+    return _Builder(calculation, library, collector, cross_check).chain()
 
 
 class _Builder:
-    def __init__(self, calculation: Calculation, library: Library, collector: Collector):
+    def __init__(self, calculation: Calculation, library: Library, collector: Collector, cross_check: bool):
         self.calculation = calculation
         self.library = library
+        self.cross_check = cross_check
         self.collector = collector
         self.scope = Scope(calculation, collector)
         self.streams: dict[str, StreamState] = {}
@@ -917,7 +923,7 @@ class _Builder:
             self.scope, self.library, term, group, dimensions, stream, situation, deposit_surface=moved
         )
         self._check_with(term, situation, film)
-        branch = film.branch()
+        branch = film.branch(self.cross_check)
         if branch is not None:
             drop, reason = lay_out_pressure_drop(film)
             branch = replace(branch, pressure_drop=drop, no_pressure_drop=reason)

@@ -751,14 +751,17 @@ class FilmScope:
 
     # -- the whole branch -----------------------------------------------------------------------------
 
-    def branch(self) -> Branch | None:
-        """The film with its method: forced by the file, or chosen by the situation's table."""
+    def branch(self, cross_check: bool = True) -> Branch | None:
+        """The film with its method: forced by the file, or chosen by the situation's table.
+
+        With ``cross_check`` the situation's other methods are laid out beside it.
+        """
         assert self.situation is not None
         forced = self.term.texts.get("method", "")
         self.candidates = frozenset((*self.situation.methods, forced))
         branch = self.forced_branch(forced) if forced else self.chosen_branch()
-        if branch is None:
-            return None
+        if branch is None or not cross_check:
+            return branch
         alternatives, unusable = self.alternatives({candidate.method.id for candidate in branch.candidates})
         return replace(branch, alternatives=alternatives, unusable=unusable)
 

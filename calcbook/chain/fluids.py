@@ -14,6 +14,7 @@ from calcbook.properties import Fluid, FluidAtPressure
 Array = np.ndarray
 Read = Callable[[FluidAtPressure, Array], Array]
 FRACTION_STEP = 1e-4
+FEW_STATES = 8
 
 
 @dataclass(frozen=True)
@@ -112,13 +113,22 @@ class PropertyOperation:
         shape = np.broadcast_shapes(temperature.shape, *(item.shape for item in varying))
         flat = np.ascontiguousarray(np.broadcast_to(temperature, shape)).ravel()
         columns = np.stack([np.broadcast_to(item, shape).ravel() for item in varying])
-        if (columns == columns[:, :1]).all():
-            # The usual case: one state for all samples. Finding the different ones would sort them all.
-            return self._read([float(item) for item in columns[:, 0]], flat, read).reshape(shape)
-        states, group = np.unique(columns, axis=1, return_inverse=True)
         result = np.empty(flat.shape)
+        waiting = np.arange(flat.size)
+        # Nearly always there are few states, one as a rule: they are found without sorting the samples.
+        for _ in range(FEW_STATES):
+            state = columns[:, waiting[0]]
+            here = (columns[:, waiting] == state[:, None]).all(axis=0)
+            if here.all() and waiting.size == flat.size:
+                return self._read([float(item) for item in state], flat, read).reshape(shape)
+            chosen = waiting[here]
+            result[chosen] = self._read([float(item) for item in state], flat[chosen], read)
+            waiting = waiting[~here]
+            if not waiting.size:
+                return result.reshape(shape)
+        states, group = np.unique(columns[:, waiting], axis=1, return_inverse=True)
         for index in range(states.shape[1]):
-            chosen = group == index
+            chosen = waiting[group.ravel() == index]
             result[chosen] = self._read([float(item) for item in states[:, index]], flat[chosen], read)
         return result.reshape(shape)
 

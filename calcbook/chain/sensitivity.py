@@ -106,7 +106,7 @@ def _alike(solution: Solution) -> list[Array]:
     size = solution.converged.size
     rows = [choice.ravel() for choice in solution.chosen.values()]
     rows += [mask.ravel().astype(int) for mask in solution.jumps.values()]
-    if not rows:
+    if not rows or size == 1:
         return [np.arange(size)]
     _, group = np.unique(np.stack(rows), axis=1, return_inverse=True)
     return [np.flatnonzero(group.ravel() == number) for number in range(int(group.max()) + 1)]

@@ -10,6 +10,7 @@ fluid or a record.
 
 from __future__ import annotations
 
+import functools
 from collections.abc import Mapping
 from pathlib import Path
 
@@ -88,8 +89,8 @@ class Library:
 
     def names(self, kind: str) -> tuple[str, ...]:
         """The ids of every card of a kind (methods, situations, materials), in alphabetical order."""
-        built_in = {path.stem for path in (ROOT / kind).glob("*.yaml")}
-        return tuple(sorted(built_in | set(self._house_cards(kind))))
+        house = self._house_cards(kind)
+        return tuple(sorted({*_built_in_names(kind), *house})) if house else _built_in_names(kind)
 
     def _house_cards(self, kind: str) -> dict[str, Path]:
         """The book's own cards of a kind: what a card is, its first key says."""
@@ -119,6 +120,11 @@ class Library:
                 )
             ]
         )
+
+
+@functools.cache
+def _built_in_names(kind: str) -> tuple[str, ...]:
+    return tuple(sorted(path.stem for path in (ROOT / kind).glob("*.yaml")))
 
 
 def _is_plain(name: str) -> bool:

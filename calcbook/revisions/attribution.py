@@ -183,6 +183,8 @@ class _Game:
         self.blocks: list[tuple[int, ...]] = [(number,) for number in range(len(mixer.changes))]
         self.evaluations = self.structures = 0
         self.overrides: dict[int, dict[str, float]] = {}
+        # What is known of a block does not change when others are joined.
+        self.moved: dict[tuple[int, ...], dict[str, float] | None] = {}
 
     def played(self) -> tuple[dict[str, Array], Callable[[Array], Shares], int]:
         """Values of every subset wanted, the function that makes shares of them, and the count of sampled
@@ -284,24 +286,47 @@ class _Game:
 
     def _find_overrides(self) -> None:
         """Blocks that only move inputs of the old chain, with the inputs they move."""
-        self.overrides = {}
         before = self.mixer.chain(frozenset())
         assert before is not None
-        for number, block in enumerate(self.blocks):
-            after = self.mixer.chain(frozenset(block))
-            if after is None or any(self.mixer.changes[item].kind in ALWAYS_STRUCTURAL for item in block):
-                continue
-            moved = moved_inputs(before, after)
-            if moved is not None and self._agree(after, with_inputs(before, moved)):
-                self.overrides[number] = moved
+        fresh = [block for block in self.blocks if block not in self.moved]
+        found = {block: self._moved_by(before, block) for block in fresh}
+        agreeing = self._agreeing(
+            before, {block: moved for block, moved in found.items() if moved is not None}
+        )
+        self.moved |= {block: moved if block in agreeing else None for block, moved in found.items()}
+        moves = ((number, self.moved[block]) for number, block in enumerate(self.blocks))
+        self.overrides = {number: moved for number, moved in moves if moved is not None}
 
-    def _agree(self, one: Chain, other: Chain) -> bool:
-        """Whether two chains give one U in every condition, as two of one structure do."""
+    def _moved_by(self, before: Chain, block: tuple[int, ...]) -> dict[str, float] | None:
+        """The inputs that a block moves; None where it is known to do more than that."""
+        after = self.mixer.chain(frozenset(block))
+        if after is None or any(self.mixer.changes[item].kind in ALWAYS_STRUCTURAL for item in block):
+            return None
+        return moved_inputs(before, after)
+
+    def _agreeing(
+        self, before: Chain, found: dict[tuple[int, ...], dict[str, float]]
+    ) -> set[tuple[int, ...]]:
+        """Blocks whose own chain gives the U, in every condition, that the old one gives with the inputs moved.
+
+        The old chain is solved for all blocks in one call, a sample each.
+        """
+        if not found:
+            return set()
+        names = {name for moved in found.values() for name in moved}
+        inputs = {
+            name: np.array([moved.get(name, before.inputs[name].value) for moved in found.values()])
+            for name in sorted(names)
+        }
+        agree = np.ones(len(found), dtype=bool)
         for condition in self.conditions:
-            first, second = (float(self._solved(chain, {}, 1, condition)[1][0]) for chain in (one, other))
-            if not abs(first - second) <= SAME_ANSWER * abs(first):
-                return False
-        return True
+            expected = self._solved(before, inputs, len(found), condition)[1]
+            for place, block in enumerate(found):
+                after = self.mixer.chain(frozenset(block))
+                assert after is not None
+                own = float(self._solved(after, {}, 1, condition)[1][0])
+                agree[place] &= abs(own - expected[place]) <= SAME_ANSWER * abs(own)
+        return {block for block, holds in zip(found, agree, strict=True) if holds}
 
     def _values(self, subsets: Array) -> tuple[dict[str, Array], Array]:
         """Results of subsets (rows of flags by block), and which of them have an answer."""

@@ -87,7 +87,8 @@ class Mixer:
         try:
             document = Document(self.new.document.name, "", self._tree(chosen))
             calculation = read_document(document, self._settings(chosen), collector, Path())
-            chain = build(calculation, self._library(chosen), collector) if not collector else None
+            library = self._library(chosen)
+            chain = build(calculation, library, collector, cross_check=False) if not collector else None
         except Faults:
             return None
         return None if collector else chain
