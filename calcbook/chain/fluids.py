@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import functools
 from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass, field
 
@@ -77,7 +78,7 @@ class PropertyOperation:
     has_fraction: bool
     keeps_phase: bool = False
 
-    @property
+    @functools.cached_property
     def symbols(self) -> tuple[str, ...]:
         flags = (("p", self.has_pressure), ("w", self.has_fraction), ("liquid", self.keeps_phase))
         return ("T", *(name for name, there in flags if there))
@@ -108,8 +109,8 @@ class PropertyOperation:
         """Read the samples group by group, each group at one pressure, fraction and phase."""
         temperature = np.asarray(arguments["T"], dtype=float)
         varying = [np.asarray(arguments[name], dtype=float) for name in self.symbols[1:]]
-        if all(item.ndim == 0 for item in varying):
-            return self._read([float(item) for item in varying], temperature, read)
+        if not any([item.ndim for item in varying]):
+            return self._read([item.item() for item in varying], temperature, read)
         shape = np.broadcast_shapes(temperature.shape, *(item.shape for item in varying))
         flat = np.ascontiguousarray(np.broadcast_to(temperature, shape)).ravel()
         columns = np.stack([np.broadcast_to(item, shape).ravel() for item in varying])

@@ -10,7 +10,7 @@ unit, a card or a file, print, or let one sample's value depend on another's.
 
 from calcbook.formulas.derivatives import partial
 from calcbook.formulas.dimensions import DIMENSIONLESS, Dimension, dimension, dimension_text
-from calcbook.formulas.evaluation import evaluate
+from calcbook.formulas.evaluation import evaluate, evaluate_quietly
 from calcbook.formulas.figures import number_text, parse_number
 from calcbook.formulas.grammar import parse_expression, parse_relation, parse_written
 from calcbook.formulas.nodes import (
@@ -68,6 +68,7 @@ __all__ = [
     "dimension",
     "dimension_text",
     "evaluate",
+    "evaluate_quietly",
     "number_text",
     "parse_expression",
     "parse_number",

@@ -67,11 +67,24 @@ def evaluate(relation: Relation | Node, values: Mapping[str, Any]) -> NDArray[An
     with ``value(T)``, ``mean(T_1, T_2)`` and ``slope(T)`` on arrays. The result is float64, or bool for a
     condition; what has no value is NaN or infinite, without a warning. Raises KeyError for a missing symbol.
     """
+    with np.errstate(all="ignore"):
+        return evaluate_quietly(relation, values)
+
+
+def evaluate_quietly(
+    relation: Relation | Node, values: Mapping[str, Any], names: Mapping[str, str] | None = None
+) -> NDArray[Any]:
+    """``evaluate`` for a caller that has silenced numpy's warnings for many relations at once.
+
+    ``names`` gives the key under which the value of a symbol stands; without it that is the symbol.
+    """
     tree = tree_of(relation)
     step, symbols, kind, may_borrow = tree.memory.get(_prepared) or _prepared(tree)
-    frame = _Frame({name: _array(values[name]) for name in symbols})
-    with np.errstate(all="ignore"):
-        result = step(frame)
+    if names is None:
+        frame = _Frame({name: _array(values[name]) for name in symbols})
+    else:
+        frame = _Frame({name: _array(values[names[name]]) for name in symbols})
+    result = step(frame)
     array: NDArray[Any] = np.asarray(result, dtype=kind)
     if may_borrow and (not array.flags.writeable or any(array is value for value in frame.values.values())):
         return array.copy()

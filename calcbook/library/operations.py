@@ -12,7 +12,7 @@ from typing import Protocol
 
 import numpy as np
 
-from calcbook.formulas import Binary, Compare, Node, Relation, evaluate, partial
+from calcbook.formulas import Binary, Compare, Node, Relation, evaluate, evaluate_quietly, partial
 from calcbook.library.cards import Solve, Sum, Table
 
 Array = np.ndarray
@@ -275,22 +275,34 @@ def run(steps: Sequence[Step], values: dict[str, Array], slopes: Slopes | None =
     ``slopes[name][seed]`` is the derivative of a value with respect to a seed; only names that depend
     on a seed have an entry, so that what does not depend costs nothing.
     """
-    for step in steps:
-        arguments = {local: values[name] for local, name in step.inputs.items()}
-        value = step.operation.value(arguments)
-        values[step.name] = value
-        if slopes is not None:
-            carried = carry(step, arguments, value, slopes)
-            if carried:
-                slopes[step.name] = carried
+    with np.errstate(all="ignore"):
+        for step in steps:
+            operation = step.operation
+            if isinstance(operation, RelationOperation):
+                value = evaluate_quietly(operation.relation, values, step.inputs)
+            else:
+                value = operation.value({local: values[name] for local, name in step.inputs.items()})
+            values[step.name] = value
+            if slopes is not None:
+                carried = _carried(step, values, value, slopes)
+                if carried:
+                    slopes[step.name] = carried
 
 
-def carry(step: Step, arguments: Mapping[str, Array], value: Array, slopes: Slopes) -> dict[str, Array]:
+def _carried(step: Step, values: Mapping[str, Array], value: Array, slopes: Slopes) -> dict[str, Array]:
     """The chain rule for one step: derivative with respect to every seed that its inputs depend on."""
     moving = [local for local, name in step.inputs.items() if name in slopes]
     if not moving:
         return {}
-    local_slopes = step.operation.slopes(arguments, value, moving)
+    operation = step.operation
+    if isinstance(operation, RelationOperation):
+        local_slopes = {
+            local: evaluate_quietly(partial(operation.relation, local), values, step.inputs)
+            for local in moving
+        }
+    else:
+        arguments = {local: values[name] for local, name in step.inputs.items()}
+        local_slopes = operation.slopes(arguments, value, moving)
     total: dict[str, Array] = {}
     for local in moving:
         for seed, slope in slopes[step.inputs[local]].items():
@@ -301,8 +313,7 @@ def carry(step: Step, arguments: Mapping[str, Array], value: Array, slopes: Slop
 
 def _product(outer: Array, inner: Array) -> Array:
     """A product in which a zero outer slope stays zero, also where the inner one is infinite."""
-    with np.errstate(invalid="ignore", over="ignore"):
-        product = outer * inner
-        if np.isfinite(product).all():
-            return product
-        return np.where((outer == 0.0) | (inner == 0.0), 0.0, product)
+    product = outer * inner
+    if np.isfinite(product).all():
+        return product
+    return np.where((outer == 0.0) | (inner == 0.0), 0.0, product)

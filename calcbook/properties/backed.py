@@ -256,7 +256,6 @@ class PureAtPressure(_BackedAtPressure):
     pressure: float
     phase: Phase | None
     _cut: dict[str, Any] = field(init=False, repr=False, compare=False)
-    _kept_curves: dict[str, Curve] = field(init=False, repr=False, compare=False, default_factory=dict)
     has_vapour_pressure = True
 
     def __post_init__(self) -> None:
@@ -332,6 +331,8 @@ class PureAtPressure(_BackedAtPressure):
         return self._delivered(property_name, temperatures, result, outside)
 
     def _flat(self, property_name: str, temperatures: Array, sloped: bool) -> Array:
+        if temperatures.size == 1:
+            return self._flat_one(property_name, temperatures, sloped)
         result = np.full(temperatures.shape, np.nan)
         for chosen, curve, _ in self._curves(temperatures):
             if chosen.all():
@@ -339,6 +340,13 @@ class PureAtPressure(_BackedAtPressure):
             if chosen.any():
                 result[chosen] = _along(curve, property_name, temperatures[chosen], sloped)
         return result
+
+    def _flat_one(self, property_name: str, temperature: Array, sloped: bool) -> Array:
+        at = temperature.item()
+        curve = self._curve_at(at)
+        if curve is None or not curve.low <= at <= curve.high:
+            return np.full(temperature.shape, np.nan)
+        return (curve.slope if sloped else curve.value)(property_name, temperature)
 
     def _asked(self, name: str, temperatures: Array, pressures: Array, outside: Outside) -> Array:
         """Values straight from the backend, by the same rules of phase as on the curves."""
@@ -378,32 +386,56 @@ class PureAtPressure(_BackedAtPressure):
 
     def _curves(self, temperatures: Array) -> list[tuple[NDArray[np.bool_], Curve, bool]]:
         """Which samples lie on which curve; the last entry says that the curve is one of saturation."""
+        if self._only is not None:
+            return [(np.ones(temperatures.shape, dtype=bool), self._only, False)]
+        if not self._boils:
+            return []
         bubble, dew = self._cut["T_bubble"], self._cut["T_dew"]
-        low, high = self.limits()
-        freezing = self._cut["T_freeze"] or low
-        everywhere = np.ones(temperatures.shape, dtype=bool)
-        if self.pressure >= self._facts()["p_critical"]:
-            return [(everywhere, self._curve("dense", freezing, high), False)]
-        if bubble is None or dew is None:
-            return [(everywhere, self._curve("gas", low, high), False)] if self.phase != "liquid" else []
-        liquid, gas = self._curve("liquid", freezing, bubble), self._curve("gas", dew, high)
         if self.phase == "liquid":
             hot = temperatures > bubble
-            return [(~hot, liquid, False), (hot, self._side("liquid").curve(), True)]
+            return [(~hot, self._liquid, False), (hot, self._side("liquid").curve(), True)]
         if self.phase == "gas":
             cold = temperatures < dew
-            return [(~cold, gas, False), (cold, self._side("gas").curve(), True)]
+            return [(~cold, self._gas, False), (cold, self._side("gas").curve(), True)]
         below = temperatures < bubble * (1.0 - states.TWO_PHASE_BAND)
         above = temperatures > dew * (1.0 + states.TWO_PHASE_BAND)
-        return [(below, liquid, False), (above, gas, False)]
+        return [(below, self._liquid, False), (above, self._gas, False)]
+
+    def _curve_at(self, temperature: float) -> Curve | None:
+        """The curve that one sample lies on, as ``_curves`` has it; None between the phases."""
+        if self._only is not None or not self._boils:
+            return self._only
+        bubble, dew = self._cut["T_bubble"], self._cut["T_dew"]
+        if self.phase == "liquid":
+            return self._side("liquid").curve() if temperature > bubble else self._liquid
+        if self.phase == "gas":
+            return self._side("gas").curve() if temperature < dew else self._gas
+        if temperature < bubble * (1.0 - states.TWO_PHASE_BAND):
+            return self._liquid
+        return self._gas if temperature > dew * (1.0 + states.TWO_PHASE_BAND) else None
+
+    @functools.cached_property
+    def _boils(self) -> bool:
+        """Whether there is a liquid and a vapour at this pressure."""
+        return self._cut["T_bubble"] is not None and self._cut["T_dew"] is not None
+
+    @functools.cached_property
+    def _only(self) -> Curve | None:
+        """The one curve of a pressure without boiling; None where there are two, or none in the stated phase."""
+        low, high = self.limits()
+        if self.pressure >= self._facts()["p_critical"]:
+            return self._curve("dense", self._cut["T_freeze"] or low, high)
+        return self._curve("gas", low, high) if not self._boils and self.phase != "liquid" else None
+
+    @functools.cached_property
+    def _liquid(self) -> Curve:
+        return self._curve("liquid", self._cut["T_freeze"] or self.limits()[0], self._cut["T_bubble"])
+
+    @functools.cached_property
+    def _gas(self) -> Curve:
+        return self._curve("gas", self._cut["T_dew"], self.limits()[1])
 
     def _curve(self, phase: str, low: float, high: float) -> Curve:
-        """The curve of a phase; its ends follow from the phase, so each is made once."""
-        if phase not in self._kept_curves:
-            self._kept_curves[phase] = self._made_curve(phase, low, high)
-        return self._kept_curves[phase]
-
-    def _made_curve(self, phase: str, low: float, high: float) -> Curve:
         code, pressure = self.fluid.code, self.pressure
         values = Family(PROPERTIES, lambda at: backend.at_pressure(code, pressure, phase, at), AGREEMENT)
         slopes = Family(

@@ -9,7 +9,8 @@ so panels can be made when first needed, and kept.
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
+from typing import NamedTuple
 
 import numpy as np
 
@@ -35,6 +36,15 @@ class Family:
     agreement: float
 
 
+class _Panel(NamedTuple):
+    """One part of a curve's interval with its series; ``path`` says by which halves it is reached."""
+
+    path: str
+    low: float
+    high: float
+    coefficients: list[float]
+
+
 @dataclass(frozen=True, eq=False)
 class Curve:
     """One curve: its interval of temperature, where its answers are kept, and how to ask anew."""
@@ -43,6 +53,7 @@ class Curve:
     high: float
     store: Store
     families: tuple[Family, ...]
+    _sloped: dict[tuple[str, str], list[float]] = field(init=False, repr=False, default_factory=dict)
 
     def value(self, name: str, temperatures: Array) -> Array:
         """The property at temperatures (1-d, all within the interval); NaN where the backend fails."""
@@ -63,7 +74,8 @@ class Curve:
                 continue
             coefficients = self._panel(name, path, low, high)
             if coefficients is not None:
-                result[chosen] = _from_series(name, coefficients, low, high, temperatures[chosen], sloped)
+                panel = _Panel(path, low, high, coefficients)
+                result[chosen] = self._from_series(name, panel, temperatures[chosen], sloped)
             elif len(path) == DEPTH:
                 result[chosen] = self.direct(name, temperatures[chosen], sloped)
             else:
@@ -82,11 +94,27 @@ class Curve:
             middle = 0.5 * (low + high)
             path, low, high = (path + "0", low, middle) if at < middle else (path + "1", middle, high)
         if coefficients is not None:
-            result = _from_series(name, coefficients, low, high, temperature, sloped)
+            result = self._from_series(name, _Panel(path, low, high, coefficients), temperature, sloped)
         else:
             result = self.direct(name, temperature, sloped)
         self.store.save()
         return result
+
+    def _from_series(self, name: str, panel: _Panel, temperatures: Array, sloped: bool) -> Array:
+        if not sloped:
+            value = series.evaluate(panel.coefficients, panel.low, panel.high, temperatures)
+            return np.exp(value) if logged(name) else value
+        slope = series.evaluate(self._derivative(name, panel), panel.low, panel.high, temperatures)
+        if not logged(name):
+            return slope
+        return np.exp(series.evaluate(panel.coefficients, panel.low, panel.high, temperatures)) * slope
+
+    def _derivative(self, name: str, panel: _Panel) -> list[float]:
+        """The coefficients of a panel's slope, worked out once."""
+        place = (name, panel.path)
+        if place not in self._sloped:
+            self._sloped[place] = series.derivative(panel.coefficients, panel.low, panel.high)
+        return self._sloped[place]
 
     def _panel(self, name: str, path: str, low: float, high: float) -> list[float] | None:
         panels = self.store.series.get(name)
@@ -157,15 +185,3 @@ def _accepted(
     coefficients = series.fit(values)
     apart = np.abs(series.evaluate(coefficients, low, high, tested) - targets)
     return coefficients if np.max(apart) <= agreement * scale else None
-
-
-def _from_series(
-    name: str, coefficients: list[float], low: float, high: float, temperatures: Array, sloped: bool
-) -> Array:
-    if not logged(name):
-        chosen = series.derivative(coefficients, low, high) if sloped else coefficients
-        return series.evaluate(chosen, low, high, temperatures)
-    value = np.exp(series.evaluate(coefficients, low, high, temperatures))
-    if not sloped:
-        return value
-    return value * series.evaluate(series.derivative(coefficients, low, high), low, high, temperatures)

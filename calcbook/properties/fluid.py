@@ -142,9 +142,10 @@ class FluidAtPressure(ABC):
         return self._delivered(name, temperatures, result, outside)
 
     def _delivered(self, name: str, temperatures: Array, result: Array, outside: Outside) -> Array:
-        missing = np.isnan(result) & ~np.isnan(temperatures.ravel())
-        if outside == "fault" and missing.any():
-            raise self._explain(name, float(temperatures.ravel()[int(np.argmax(missing))]))
+        if outside == "fault":
+            missing = np.isnan(result) & ~np.isnan(temperatures.ravel())
+            if missing.any():
+                raise self._explain(name, float(temperatures.ravel()[int(np.argmax(missing))]))
         return result.reshape(temperatures.shape)
 
 
