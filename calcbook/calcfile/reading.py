@@ -937,6 +937,7 @@ class Reader:
             "emissivity",
             "surroundings",
             "vapour velocity",
+            "method factor",
             "pressure",
             *described.GAP_SIDES,
         )

@@ -604,8 +604,8 @@ class FilmScope:
 
     # -- a method laid out ----------------------------------------------------------------------------
 
-    def candidate(self, method: str, because: str) -> Candidate | None:
-        """Lay out a method on this film; None after a fault."""
+    def candidate(self, method: str, because: str, is_used: bool = True) -> Candidate | None:
+        """Lay out a method on this film; None after a fault. What only checks another method takes no factor."""
         try:
             program = self.library.program(method)
         except Faults as faults:
@@ -617,6 +617,8 @@ class FilmScope:
             return None
         self.lay_out(program, names)
         coefficient = self.coefficient(card, names[program.result])
+        if coefficient and is_used:
+            coefficient = self.with_method_factor(card, coefficient)
         if not coefficient:
             return None
         steps = self.ancestors([coefficient])
@@ -706,6 +708,24 @@ class FilmScope:
             "film coefficient",
         )
         return self.referred(card, coefficient)
+
+    def with_method_factor(self, card: Method, coefficient: str) -> str:
+        """The coefficient times the factor that the file puts on its method; as it is where it states none."""
+        factor = self.scope.value(
+            self.term.values.get("method factor"), "method factor", self.owner, "method factor"
+        )
+        if not factor:
+            return coefficient
+        return self.scope.relation_step(
+            f"{self.owner}/{card.id}/h with factor",
+            "h_F",
+            "film coefficient with the method factor",
+            self.owner,
+            parse_expression("F_m*h"),
+            {"F_m": factor, "h": coefficient},
+            "method factor of the calculation file",
+            "film coefficient",
+        )
 
     def referred(self, card: Method, coefficient: str) -> str:
         """The coefficient on the metal's surface, where a deposit moves the surface that the fluid touches."""
@@ -832,7 +852,7 @@ class FilmScope:
             before = dict(self.scope.steps)
             self.scope.collector, self.missing = Collector(), set()
             self.scope.assumptions, self.scope.used_in = dict(kept[1]), {}
-            candidate = self.candidate(method, "cross-check")
+            candidate = self.candidate(method, "cross-check", is_used=False)
             reasons = [fault.message for fault in self.scope.collector]
             self.scope.collector, self.scope.assumptions, self.scope.used_in, self.missing = kept
             if candidate is not None and not reasons:

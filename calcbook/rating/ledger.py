@@ -8,6 +8,7 @@ from __future__ import annotations
 from calcbook.calcfile.calculation import Value
 from calcbook.chain.outcome import Solved
 from calcbook.chain.rating_outcome import LedgerRow
+from calcbook.chain.solve import Solution
 from calcbook.chain.types import CLEAN, SERVICE
 
 # Below this part of the installed area a difference of two solved resistances is rounding.
@@ -25,7 +26,10 @@ def ledger(solved: Solved) -> tuple[LedgerRow, ...]:
     }
     # m² for each m² K/W on the basis area
     per_resistance = required[SERVICE] * service.number(chain.results["U"])
-    rows = [LedgerRow("duty at clean U", required[CLEAN], "A_req clean", False)]
+    factors = _factor_rows(solved, per_resistance)
+    duty = required[CLEAN] - sum(row.area for row in factors)
+    basis = "A_req clean, without the method factors" if factors else "A_req clean"
+    rows = [LedgerRow("duty at clean U", duty, basis, False), *factors]
     moved = 0.0
     for row, other in zip(base.terms[SERVICE], base.terms[CLEAN], strict=True):
         if row.kind == "fouling":
@@ -49,6 +53,21 @@ def ledger(solved: Solved) -> tuple[LedgerRow, ...]:
     return tuple(rows)
 
 
+def _factor_rows(solved: Solved, per_resistance: float) -> list[LedgerRow]:
+    """The area that a factor on a method's coefficient asks for: R_film·(1 − F_m) of the clean film."""
+    rows = []
+    clean = solved.base.solutions[CLEAN]
+    for term in solved.chain.calculation.resistances:
+        value = term.values.get("method factor")
+        row = next((row for row in solved.base.terms[CLEAN] if row.name == term.name), None)
+        if value is None or row is None:
+            continue
+        factor = _number(clean, value, f"{term.name}/method factor")
+        area = per_resistance * row.resistance * (1.0 - factor)
+        rows.append(LedgerRow(f"method factor of {term.name}", area, f"F_m = {factor:g} on its method", True))
+    return rows
+
+
 def _plugged_area(solved: Solved, installed: float) -> float:
     """The area of plugged tubes, which stands beside the installed one; 0 where none is stated."""
     geometry = solved.chain.calculation.geometry
@@ -60,6 +79,10 @@ def _plugged_area(solved: Solved, installed: float) -> float:
 
 
 def _figure(solved: Solved, value: Value, key: str) -> float:
-    solution = solved.base.solutions[SERVICE]
-    names = (f"given/{value.symbol}", f"derived/{value.symbol}") if value.symbol else (f"geometry/{key}",)
+    return _number(solved.base.solutions[SERVICE], value, f"geometry/{key}")
+
+
+def _number(solution: Solution, value: Value, literal: str) -> float:
+    """A figure of the file in a solution: a given, a derived quantity, or stated in place."""
+    names = (f"given/{value.symbol}", f"derived/{value.symbol}") if value.symbol else (literal,)
     return next(solution.number(name) for name in names if name in solution.values)

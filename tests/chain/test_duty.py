@@ -295,3 +295,21 @@ def test_fouling_specified_for_the_whole_unit(tmp_path: Path, way: str, value: s
     )
     answer = solve_file(path)
     assert figure(answer, "cleanliness") == pytest.approx(ratio, rel=1e-12)
+
+
+RATED = Path(__file__).resolve().parent.parent / "cases" / "ok" / "rated-cooler.yaml"
+
+
+def test_a_method_factor_has_its_own_line_in_the_ledger() -> None:
+    """F_m = 0.9 on a film of resistance R: R·(1 − 0.9) of it is the factor's, Q/ΔT_lm·R in m²."""
+    answer = solve_file(RATED)
+    clean = answer.base.solutions["clean"]
+    film = clean.number(answer.chain.results["R tube-side film"])
+    lines = {row.name: row.area for row in answer.rating.ledger}
+    expected = figure(answer, "duty") / figure(answer, "LMTD") * film * 0.1
+    assert lines["method factor of tube-side film"] == pytest.approx(expected, rel=1e-9)
+    assert answer.rating.ledger_sum == pytest.approx(figure(answer, "area_installed"), rel=1e-12)
+    # The methods of the cross-check stand without the factor: the same law in another's place differs by it.
+    assert clean.number("tube-side film/gnielinski-1976/h with factor") == pytest.approx(
+        0.9 * clean.number("tube-side film/gnielinski-1976/h"), rel=1e-14
+    )
