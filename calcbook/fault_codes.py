@@ -131,6 +131,7 @@ CODES: dict[str, str] = {
     "accept-unknown": "an accepted check, condition or case that does not exist",
     "result-unknown": "a result that the calculation does not have",
     "card-id-differs": "the id of a card differs from its file name",
+    "currency-unreadable": "a word for money that is no single word, or that is a unit",
     "method-not-growth": "a card that gives no fouling resistance after a time in service",
     "method-not-friction": "a card in the friction of a situation that gives neither a friction factor nor a pressure drop",
     "card-result-differs": "the last relation of a card does not give its result",

@@ -129,7 +129,16 @@ def _solved(calculation: Calculation, library: Library, collector: Collector) ->
     if chain is not None and library.house is not None:
         check_house_cards(chain, collector)
     solved = analyse(chain, collector) if chain is not None else None
-    return _assessed(rated(solved), collector) if solved is not None else None
+    return _assessed(_followed(rated(solved)), collector) if solved is not None else None
+
+
+def _followed(solved: Solved) -> Solved:
+    """The solved calculation with its table over the time in service, where the file asks for one."""
+    if not solved.chain.in_service:
+        return solved
+    from calcbook.rating.growth import over_time
+
+    return over_time(solved)
 
 
 def _assessed(solved: Solved, collector: Collector) -> Solved:

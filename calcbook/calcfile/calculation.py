@@ -304,6 +304,30 @@ class Settings:
 
 
 @dataclass(frozen=True, slots=True)
+class TimeInService:
+    """How long the unit is followed as its fouling grows, and in how many rows from the cleaned unit on."""
+
+    until: Value
+    steps: int
+    place: Place
+
+
+@dataclass(frozen=True, slots=True)
+class Cleaning:
+    """What one cleaning takes and costs. Without money (``currency`` empty) the interval of most heat is meant.
+
+    ``against`` names what the heat that is lost is counted from: the cleaned unit, the duty, or nothing stated.
+    """
+
+    duration: Value
+    currency: str
+    cost: Value | None
+    price: Value | None
+    against: str
+    place: Place
+
+
+@dataclass(frozen=True, slots=True)
 class Calculation:
     """One calculation file, read. ``meaning`` is its canonical content, for the digest.
 
@@ -343,3 +367,5 @@ class Calculation:
     duty: Duty | None = None
     fouling_specified: FoulingSpecified | None = None
     uncertainty: UncertaintyText | None = None
+    time_in_service: TimeInService | None = None
+    cleaning: Cleaning | None = None

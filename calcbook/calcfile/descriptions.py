@@ -300,6 +300,49 @@ GROWTH = Description(
     ),
     free=Key("<symbol>", "figure that the card of the growth needs", "node", of=SOURCED),
 )
+TIME_IN_SERVICE = Description(
+    "a time in service",
+    "the unit followed from one cleaning on",
+    (
+        Key("until", "end of the table", "node", of=SOURCED, quantity="service time", required=True),
+        Key("steps", "rows of the table, the first at the cleaned unit", "name", required=True, example="13"),
+    ),
+)
+CLEANING = Description(
+    "a cleaning",
+    "what one cleaning takes and costs",
+    (
+        Key(
+            "duration",
+            "time out of service",
+            "node",
+            of=SOURCED,
+            quantity="cleaning time",
+            required=True,
+        ),
+        Key("currency", "word for the money of this calculation, such as EUR; nothing is converted", "name"),
+        Key(
+            "cost of one cleaning",
+            "money for one cleaning, with the production that is lost in it",
+            "node",
+            of=SOURCED,
+            quantity="cleaning cost",
+        ),
+        Key(
+            "price of heat",
+            "money for the heat that fouling loses",
+            "node",
+            of=SOURCED,
+            quantity="price of heat",
+        ),
+        Key(
+            "loss against",
+            "what lost heat is counted from; left out, the cleaned unit",
+            "choice",
+            choices=("cleaned unit", "duty"),
+        ),
+    ),
+)
 FINS = Description(
     "fins",
     "fins on the surface that a film acts on",
@@ -552,6 +595,13 @@ FILE = Description(
             "mapping",
             of=FOULING_SPECIFIED,
         ),
+        Key(
+            "time in service",
+            "table over the time since the last cleaning, where fouling grows",
+            "mapping",
+            of=TIME_IN_SERVICE,
+        ),
+        Key("cleaning", "what one cleaning takes and costs, for the interval", "mapping", of=CLEANING),
         Key("sweep", "sweep over givens", "node", later=True),
         Key(
             "evaluate at",

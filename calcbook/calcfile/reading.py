@@ -33,6 +33,7 @@ from calcbook.calcfile.calculation import (
     Value,
 )
 from calcbook.calcfile.duty import read_duty
+from calcbook.calcfile.in_service import read_cleaning, read_time_in_service
 from calcbook.calcfile.links import LinkText, Resolve
 from calcbook.calcfile.meaning import meaning_of
 from calcbook.calcfile.specified import read_specified
@@ -56,7 +57,7 @@ NUMBER = re.compile(r"[A-Za-z0-9][A-Za-z0-9_.-]{0,39}")
 SYMBOL = re.compile(r"[A-Za-z][A-Za-z0-9_]{0,39}")
 # What other ids of the chain start with: a term of that name would be taken for them.
 CLASHING_NAMES = frozenset(
-    ["given", "derived", "geometry", "circuit", "solution", "book", "duty", "fouling", "factor"]
+    ["given", "derived", "geometry", "circuit", "solution", "book", "duty", "fouling", "factor", "cleaning"]
 )
 CLASHING_STARTS = ("stream ", "case ", "fluid ", "assumption ", "word ", "unread ")
 AT_PLACE = "at "
@@ -173,6 +174,7 @@ class Reader:
         cases = self.cases(givens)
         duty = read_duty(self)
         specified = read_specified(self, terms)
+        time_in_service, cleaning = read_time_in_service(self), read_cleaning(self)
         streams = {key.text: self.stream(key, value) for key, value in self.entries("streams")}
         self.check_stream_temperatures(streams, duty)
         return Calculation(
@@ -204,6 +206,8 @@ class Reader:
             uncertainty=read_uncertainty(
                 self.fields.node("uncertainty"), (*givens, *self.broken), self.collector
             ),
+            time_in_service=time_in_service,
+            cleaning=cleaning,
         )
 
     def meaning(self) -> object:

@@ -14,6 +14,7 @@ from calcbook.chain.films import FilmScope
 from calcbook.chain.fins import FinnedSide, check_finned_situation, lay_out_fins, lay_out_fins_layer
 from calcbook.chain.gaps import lay_out_gap
 from calcbook.chain.growth import Grown, GrownDeposit, lay_out_growth, lay_out_thickness
+from calcbook.chain.in_service import lay_out_in_service
 from calcbook.chain.petroleum import lay_out_cards
 from calcbook.chain.pressure import asked_symbols, lay_out_pressure_drop
 from calcbook.chain.scope import Scope, is_empty_source, unnamed_kind
@@ -30,6 +31,7 @@ from calcbook.chain.types import (
     ChainStep,
     Element,
     Group,
+    Growing,
     Input,
     Layer,
     OpenFigure,
@@ -185,6 +187,7 @@ class _Builder:
         later = {step.id for element in elements for step in _steps_of(element)} | {
             step.id for step in circuit
         }
+        in_service = lay_out_in_service(scope, any(self.growing.values()), results)
         static = tuple(step for step in scope.steps.values() if step.id in self.early or step.id not in later)
         self._mark_unused()
         return Chain(
@@ -211,6 +214,16 @@ class _Builder:
                 for case, changes in self.calculation.cases.items()
             },
             open_figures=(*self.open_figures, *(self.duty.open_figures if self.duty is not None else ())),
+            growing=self._growing_terms(),
+            in_service=in_service,
+        )
+
+    def _growing_terms(self) -> tuple[Growing, ...]:
+        """The terms whose resistance grows, in the order of the file."""
+        return tuple(
+            Growing(term.name, term.growth.model, grown.time, grown.fouling, grown.needs)
+            for term in self.calculation.resistances
+            if term.growth is not None and (grown := self.growing.get(term.name)) is not None
         )
 
     def _restated_value(self, symbol: str, value: Value) -> float:

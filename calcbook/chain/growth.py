@@ -27,12 +27,13 @@ _CALENDAR = re.compile(r"\b(months?|years?|yr)\b")
 
 @dataclass(frozen=True, slots=True)
 class Grown:
-    """What has grown in service: the ids of the card's resistance, of the layer's (none when clean) and of the time
-    in service, and the limits of the card."""
+    """What has grown in service: the ids of the card's resistance, of the layer's (none when clean), of the time in
+    service and of the card's needs by symbol, and the limits of the card."""
 
     fouling: str
     resistance: str
     time: str
+    needs: Mapping[str, str]
     checks: tuple[ChainCheck, ...]
 
 
@@ -75,6 +76,11 @@ def lay_out_growth(scope: Scope, library: Library, term: Term) -> Grown | None:
     if laid_out is None:
         return None
     fouling, checks = laid_out
+    needs = {
+        item.need.symbol: figures[item.need.quantity.name]
+        for item in program.needs
+        if item.need.quantity.name in figures
+    }
     resistance = scope.relation_step(
         f"{term.name}/R",
         "R",
@@ -85,7 +91,7 @@ def lay_out_growth(scope: Scope, library: Library, term: Term) -> Grown | None:
         "growth",
         "area resistance",
     )
-    return Grown(fouling, resistance, time, checks)
+    return Grown(fouling, resistance, time, needs, checks)
 
 
 def lay_out_thickness(

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass
 
+from calcbook.chain.growth_outcome import OverTime
 from calcbook.chain.rating_outcome import Rating
 from calcbook.chain.solve import Solution
 from calcbook.chain.types import Chain, ChainStep, Input, OpenItem, RunnerAssumption
@@ -197,6 +198,7 @@ class Solved:
     governing: str
     rating: Rating | None = None
     uncertainty: Uncertainty | None = None
+    over_time: OverTime | None = None
 
     @property
     def base(self) -> CaseOutcome:

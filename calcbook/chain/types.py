@@ -275,6 +275,18 @@ class StreamState:
 
 
 @dataclass(frozen=True, slots=True)
+class Growing:
+    """A fouling term that grows in service: its card, and the ids of its time in service, of the resistance, and
+    of the card's needs by symbol."""
+
+    name: str
+    model: str
+    time: str
+    fouling: str
+    needs: Mapping[str, str]
+
+
+@dataclass(frozen=True, slots=True)
 class OpenFigure:
     """A figure that the file leaves open: its id, the step that gives it, and the condition it belongs to.
 
@@ -312,6 +324,8 @@ class Chain:
     per_metre: bool = False
     restated: Mapping[str, Mapping[str, float]] = field(default_factory=dict)
     open_figures: tuple[OpenFigure, ...] = ()
+    growing: tuple[Growing, ...] = ()
+    in_service: Mapping[str, str] = field(default_factory=dict)
 
     @property
     def inner(self) -> Group:
@@ -391,6 +405,7 @@ __all__ = [
     "Element",
     "Gap",
     "Group",
+    "Growing",
     "Input",
     "Layer",
     "OpenFigure",

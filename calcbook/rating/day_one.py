@@ -37,7 +37,7 @@ def day_one(solved: Solved) -> DayOne | None:
     assert calculation.duty is not None
     if not any(row.kind == "fouling" for row in solved.base.terms[SERVICE]):
         return None
-    chain = _open_chain(calculation, solved.chain)
+    chain = open_chain(calculation, solved.chain)
     if chain is None:
         return None
     inputs = chain.case_inputs("")
@@ -63,7 +63,7 @@ def day_one(solved: Solved) -> DayOne | None:
     )
 
 
-def _open_chain(calculation: Calculation, before: Chain) -> Chain | None:
+def open_chain(calculation: Calculation, before: Chain) -> Chain | None:
     """The calculation with open outlets and the means of its ends; None where that cannot be built."""
     duty = calculation.duty
     assert duty is not None

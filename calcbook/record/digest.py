@@ -12,6 +12,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 
 from calcbook.chain.outcome import CaseOutcome, Solved, StepRow
+from calcbook.record.growth_figures import growth_figures
 from calcbook.record.numbers import in_report_unit, report_unit, unit_text, value_text
 from calcbook.record.rating_figures import rating_figures
 from calcbook.record.uncertainty_data import displayed_uncertainty
@@ -88,6 +89,10 @@ def displayed(solved: Solved) -> dict[str, list[str]]:
             shown[f"rating / {name}"] = [text, unit_text(report_unit(kind, report))]
     if solved.uncertainty is not None:
         shown.update(displayed_uncertainty(solved.uncertainty))
+    if solved.over_time is not None:
+        for name, value, kind in growth_figures(solved.over_time):
+            text = in_report_unit(value, kind, report, RESULT_DIGITS)
+            shown[f"time in service / {name}"] = [text, unit_text(report_unit(kind, report))]
     return shown
 
 

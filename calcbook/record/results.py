@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 
+from calcbook.chain.growth_outcome import OverTime
 from calcbook.chain.outcome import CaseOutcome, CheckResult, CriterionResult, Solved, StepRow, TermRow
 from calcbook.chain.rating_outcome import Rating
 from calcbook.chain.types import CONDITIONS, SERVICE, OpenItem
@@ -11,6 +12,7 @@ from calcbook.formulas import Relation
 from calcbook.quantities import QuantityKind
 from calcbook.record.data import Data, rounded
 from calcbook.record.digest import Digest
+from calcbook.record.growth_figures import growth_figures
 from calcbook.record.rating_figures import rating_figures
 from calcbook.record.software import Software
 from calcbook.record.steps import StepTexts
@@ -44,6 +46,7 @@ def results_data(solved: Solved, digest: Digest, software: Software) -> Data:
         "results": _results(base),
         "conditions": {condition: [_term(row) for row in base.terms[condition]] for condition in CONDITIONS},
         **({"rating": _rating(solved.rating)} if solved.rating is not None else {}),
+        **({"time in service": _over_time(solved.over_time)} if solved.over_time is not None else {}),
         "steps": _steps(solved),
         "checks": [_check(check) for check in base.checks],
         "acceptance": [_criterion(item) for case in solved.cases for item in case.criteria],
@@ -70,6 +73,10 @@ def _results(case: CaseOutcome) -> Data:
 
 def _rating(rating: Rating) -> Data:
     return {name: _figure(value, kind) for name, value, kind in rating_figures(rating)}
+
+
+def _over_time(found: OverTime) -> Data:
+    return {name: _figure(value, kind) for name, value, kind in growth_figures(found)}
 
 
 def _term(row: TermRow) -> Data:

@@ -17,6 +17,7 @@ from calcbook.record.numbers import (
 )
 from calcbook.record.page import Page, case_name, counted
 from calcbook.record.sections.duty import day_one_blocks
+from calcbook.record.sections.growth import time_blocks
 from calcbook.record.sections.head import criterion_row
 from calcbook.record.sections.uncertainty import uncertainty
 from calcbook.record.sections.validity import verdict
@@ -53,8 +54,8 @@ def _sensitivity_row(row: SensitivityRow, unit: str) -> tuple[str, ...]:
 
 
 def cases(page: Page) -> list[Block]:
-    """Each named case, then the clean unit on its first day."""
-    return [*_named_cases(page), *day_one_blocks(page)]
+    """Each named case, then the clean unit on its first day, then the unit over its time in service."""
+    return [*_named_cases(page), *day_one_blocks(page), *time_blocks(page)]
 
 
 def _named_cases(page: Page) -> list[Block]:
