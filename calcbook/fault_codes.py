@@ -153,6 +153,9 @@ CODES: dict[str, str] = {
     "table-not-rising": "temperatures of a table that do not rise",
     "table-row-length": "a row that does not fit its columns",
     "use-circular": "cards that use each other in a circle",
+    "model-not-growth": "a card that gives no fouling resistance over time",
+    "survey-temperature-missing": "a survey without a measured temperature at an end of the unit",
+    "survey-rows-missing": "a survey of which too few rows are left to fit a model",
     "number-in-two-files": "two calculations of a book with one number",
     "output-not-writable": "the output folder cannot be written",
     # --- sign-off, issue and the next revision ---

@@ -129,7 +129,10 @@ def _solved(calculation: Calculation, library: Library, collector: Collector) ->
     if chain is not None and library.house is not None:
         check_house_cards(chain, collector)
     solved = analyse(chain, collector) if chain is not None else None
-    return _assessed(_followed(rated(solved)), collector) if solved is not None else None
+    if solved is None:
+        return None
+    solved = _surveyed(_followed(rated(solved)), collector)
+    return _assessed(solved, collector) if solved is not None else None
 
 
 def _followed(solved: Solved) -> Solved:
@@ -150,6 +153,15 @@ def _assessed(solved: Solved, collector: Collector) -> Solved:
     from calcbook.uncertainty.assessing import with_uncertainty
 
     return with_uncertainty(solved, collector)
+
+
+def _surveyed(solved: Solved, collector: Collector) -> Solved | None:
+    """The solved calculation with its survey of plant data, where the file names one; None after a fault."""
+    if solved.chain.calculation.survey is None:
+        return solved
+    from calcbook.survey.surveying import surveyed
+
+    return surveyed(solved, collector)
 
 
 def check_house_cards(chain: Chain, collector: Collector) -> None:

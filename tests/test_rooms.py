@@ -32,6 +32,7 @@ ORDER = (
     "calcfile",
     "chain",
     "rating",
+    "survey",
     "uncertainty",
     "record",
     "links",
@@ -58,8 +59,10 @@ OWNERS = {
     "rich": {"commands", "book"},
     "platformdirs": {"properties", "book"},
     "markdown_it": {"record"},
-    "scipy": {"formulas", "chain", "uncertainty"},
-    "numpy": {"formulas", "properties", "library", "chain", "rating", "uncertainty", "record", "revisions"},
+    "scipy": {"formulas", "chain", "survey", "uncertainty"},
+    "numpy": {
+        *("formulas", "properties", "library", "chain", "rating", "survey", "uncertainty", "record", "revisions"),
+    },
 }
 # A run never asks the machine about itself: same input, same bytes. Sign-off dates are compared with today
 # in `revisions`; the cache folder is named by the environment in `properties`.

@@ -8,6 +8,7 @@ from dataclasses import dataclass, field
 
 from calcbook.calcfile.links import Link
 from calcbook.calcfile.uncertainty import UncertaintyText
+from calcbook.calcfile.survey import Survey
 from calcbook.faults import Place
 from calcbook.formulas import Relation
 from calcbook.quantities import Quantity
@@ -369,3 +370,4 @@ class Calculation:
     uncertainty: UncertaintyText | None = None
     time_in_service: TimeInService | None = None
     cleaning: Cleaning | None = None
+    survey: Survey | None = None

@@ -5,6 +5,7 @@ It drives reading, positions, nearest names, the documentation and the JSON Sche
 
 from __future__ import annotations
 
+from calcbook.calcfile.survey_keys import SURVEY
 from calcbook.documents import Description, Key
 
 TERM_KINDS = ("film", "fouling", "wall", "contact", "gap", "radiation", "stated")
@@ -609,7 +610,7 @@ FILE = Description(
             "mapping",
             of=Description("places", "", free=Key("<place>", "name of a place", "mapping")),
         ),
-        Key("survey", "plant data", "node", later=True),
+        Key("survey", "plant data of the unit", "mapping", of=SURVEY),
     ),
 )
 PERSON = Description(

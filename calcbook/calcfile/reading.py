@@ -37,6 +37,7 @@ from calcbook.calcfile.in_service import read_cleaning, read_time_in_service
 from calcbook.calcfile.links import LinkText, Resolve
 from calcbook.calcfile.meaning import meaning_of
 from calcbook.calcfile.specified import read_specified
+from calcbook.calcfile.survey_reading import read_survey
 from calcbook.calcfile.tablefile import read_table_file
 from calcbook.calcfile.uncertainty import read_uncertainty
 from calcbook.documents import Description, Document, Fields, Node, Scalar, Sequence, read_file, read_mapping
@@ -177,6 +178,7 @@ class Reader:
         time_in_service, cleaning = read_time_in_service(self), read_cleaning(self)
         streams = {key.text: self.stream(key, value) for key, value in self.entries("streams")}
         self.check_stream_temperatures(streams, duty)
+        survey = read_survey(self, self.fields.node("survey"), givens)
         return Calculation(
             file=self.document.name,
             number=self.number(head),
@@ -208,6 +210,7 @@ class Reader:
             ),
             time_in_service=time_in_service,
             cleaning=cleaning,
+            survey=survey,
         )
 
     def meaning(self) -> object:

@@ -8,6 +8,7 @@ from dataclasses import dataclass
 from calcbook.chain.growth_outcome import OverTime
 from calcbook.chain.rating_outcome import Rating
 from calcbook.chain.solve import Solution
+from calcbook.chain.survey_outcome import SurveyOutcome
 from calcbook.chain.types import Chain, ChainStep, Input, OpenItem, RunnerAssumption
 from calcbook.chain.uncertainty_outcome import Uncertainty
 from calcbook.quantities import QuantityKind
@@ -199,6 +200,7 @@ class Solved:
     rating: Rating | None = None
     uncertainty: Uncertainty | None = None
     over_time: OverTime | None = None
+    survey: SurveyOutcome | None = None
 
     @property
     def base(self) -> CaseOutcome:

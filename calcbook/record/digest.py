@@ -16,6 +16,7 @@ from calcbook.record.growth_figures import growth_figures
 from calcbook.record.numbers import in_report_unit, report_unit, unit_text, value_text
 from calcbook.record.rating_figures import rating_figures
 from calcbook.record.uncertainty_data import displayed_uncertainty
+from calcbook.record.survey import survey_texts
 
 MARK = b"calcbook-digest-1\0"
 RESULT_DIGITS = 5
@@ -93,6 +94,8 @@ def displayed(solved: Solved) -> dict[str, list[str]]:
         for name, value, kind in growth_figures(solved.over_time):
             text = in_report_unit(value, kind, report, RESULT_DIGITS)
             shown[f"time in service / {name}"] = [text, unit_text(report_unit(kind, report))]
+    if solved.survey is not None:
+        shown |= survey_texts(solved.survey)
     return shown
 
 

@@ -18,6 +18,7 @@ from calcbook.record.sections.duty import two_ways
 from calcbook.record.sections.head import brief, changes, purpose, title_block
 from calcbook.record.sections.inputs import assumptions, givens
 from calcbook.record.sections.review import cautions, review
+from calcbook.record.sections.survey import survey
 from calcbook.record.sections.validity import cross_check, validity
 from calcbook.record.software import Software, software_of
 
@@ -35,6 +36,7 @@ SECTIONS: tuple[Callable[[Page], list[Block]], ...] = (
     two_ways,
     sensitivity,
     cases,
+    survey,
     review,
     cautions,
     references,

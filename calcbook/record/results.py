@@ -17,6 +17,7 @@ from calcbook.record.rating_figures import rating_figures
 from calcbook.record.software import Software
 from calcbook.record.steps import StepTexts
 from calcbook.record.uncertainty_data import uncertainty_data
+from calcbook.record.survey import survey_data
 
 
 def results_text(solved: Solved, digest: Digest, software: Software) -> str:
@@ -31,6 +32,7 @@ def results_data(solved: Solved, digest: Digest, software: Software) -> Data:
     """The results file as dictionaries and lists, in a stable order; figures that are not known are None."""
     calculation = solved.chain.calculation
     base = solved.base
+    survey: Data = {"survey": survey_data(solved.survey)} if solved.survey is not None else {}
     return {
         "calculation": {
             "number": calculation.number,
@@ -54,6 +56,7 @@ def results_data(solved: Solved, digest: Digest, software: Software) -> Data:
         "open_items": [_open_item(item) for item in solved.open_items],
         "cases": {case.name: _case(case) for case in solved.cases[1:]},
         **({"uncertainty": uncertainty_data(solved.uncertainty)} if solved.uncertainty is not None else {}),
+        **survey,
     }
 
 

@@ -1,0 +1,144 @@
+"""The history of a unit in a CSV file beside the calculation: a row of heads, then rows as the plant gave them."""
+
+from __future__ import annotations
+
+import csv
+import hashlib
+import itertools
+import unicodedata
+from collections.abc import Iterable, Iterator, Mapping
+from dataclasses import dataclass
+from pathlib import Path
+
+from calcbook.faults import Collector, Place, nearest_names, shown
+
+MAXIMUM_BYTES = 300_000_000
+# Rows taken apart together: a long history never stands in memory cell by cell.
+PIECE = 20_000
+
+
+@dataclass(frozen=True, slots=True)
+class History:
+    """The columns that a survey names, each as one text with a line for each row.
+
+    ``rows`` is how many rows the file has. A row with more or fewer cells than there are heads has empty
+    cells throughout: it cannot be read, and is counted as such.
+    """
+
+    rows: int
+    columns: Mapping[str, str]
+
+    def content(self) -> dict[str, list[str]]:
+        """What the columns hold, for the digest: the number of rows, and SHA-256 of each column."""
+        found = {"rows": [str(self.rows)]}
+        for head, text in self.columns.items():
+            found[f"column {head}"] = [hashlib.sha256(text.encode("utf-8", "surrogatepass")).hexdigest()]
+        return found
+
+
+def read_history(
+    path: Path, wanted: Mapping[str, Place], place: Place, collector: Collector
+) -> History | None:
+    """The columns named by ``wanted`` (head to the place that names it), or None after a fault.
+
+    Codes: file-not-found, file-too-large, file-not-utf8, file-not-text, file-empty, column-unknown, key-twice.
+    Cells are not judged here: a row that cannot be read is rejected by its rule, and counted.
+    """
+    lines = _lines(path, place, collector)
+    if lines is None:
+        return None
+    rows = (row for row in csv.reader(lines, strict=True) if any(cell.strip() for cell in row))
+    try:
+        heads = [_cell(head) for head in next(rows, [])]
+        if not heads:
+            collector.add(
+                "file-empty", place, "the history holds nothing", expected="a row of heads, then rows"
+            )
+            return None
+        if not _heads_hold(heads, wanted, path.name, collector):
+            return None
+        return _taken(rows, heads, wanted)
+    except csv.Error:
+        collector.add(
+            "file-not-text",
+            place,
+            "the history is no CSV text",
+            expected="cells parted by commas, quotes closed",
+        )
+        return None
+
+
+def _lines(path: Path, place: Place, collector: Collector) -> Iterable[str] | None:
+    try:
+        with path.open("rb") as stream:
+            data = stream.read(MAXIMUM_BYTES + 1)
+    except OSError:
+        beside = sorted(item.name for item in path.parent.glob("*.csv"))
+        collector.add(
+            "file-not-found",
+            place,
+            "the history cannot be read",
+            found=path.name,
+            expected="a CSV file beside the calculation file",
+            nearest=nearest_names(path.name, beside),
+        )
+        return None
+    if len(data) > MAXIMUM_BYTES:
+        collector.add("file-too-large", place, "the history is too large", expected="at most 300 MB")
+        return None
+    try:
+        text = data.decode("utf-8-sig")
+    except UnicodeDecodeError:
+        collector.add("file-not-utf8", place, "the history is not UTF-8 text", expected="UTF-8 text")
+        return None
+    if "\x00" in text:
+        collector.add("file-not-text", place, "the history holds control characters", expected="plain text")
+        return None
+    return text.replace("\r\n", "\n").replace("\r", "\n").split("\n")
+
+
+def _heads_hold(heads: list[str], wanted: Mapping[str, Place], name: str, collector: Collector) -> bool:
+    """Whether every column that is wanted stands in the file, once."""
+    holds = True
+    for head, place in wanted.items():
+        count = heads.count(head)
+        if count == 1:
+            continue
+        holds = False
+        if count:
+            collector.add(
+                "key-twice",
+                place,
+                f"the column `{shown(head)}` stands {count} times in {name}",
+                expected="each head once",
+            )
+        else:
+            collector.add(
+                "column-unknown",
+                place,
+                f"{name} has no column `{shown(head)}`",
+                found=shown(head),
+                expected=shown(", ".join(heads), 200),
+                nearest=nearest_names(head, heads),
+            )
+    return holds
+
+
+def _taken(rows: Iterator[list[str]], heads: list[str], wanted: Mapping[str, Place]) -> History:
+    places = {head: heads.index(head) for head in wanted}
+    parts: dict[str, list[str]] = {head: [] for head in wanted}
+    empty = [""] * len(heads)
+    count = 0
+    while piece := list(itertools.islice(rows, PIECE)):
+        count += len(piece)
+        whole = [row if len(row) == len(heads) else empty for row in piece]
+        for head, position in places.items():
+            parts[head].append("\n".join([_cell(row[position]) for row in whole]))
+    return History(count, {head: "\n".join(texts) for head, texts in parts.items()})
+
+
+def _cell(text: str) -> str:
+    """A cell as typed, in Unicode form NFC, without blanks around it and on one line."""
+    if text.isascii() and "\n" not in text:
+        return text.strip()
+    return " ".join(unicodedata.normalize("NFC", text).split())

@@ -1,0 +1,141 @@
+"""What a survey of plant data found, for the record and for programs. Frozen, nothing computes."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from calcbook.quantities import QuantityKind
+
+
+@dataclass(frozen=True, slots=True)
+class RuleCount:
+    """One rule: its id, what it rejects, its limit as text, and the rows it rejected.
+
+    ``first`` says where the first of them stands. A rule without a limit is not applied, and rejects none.
+    """
+
+    id: str
+    rejects: str
+    limit: str
+    count: int
+    first: str
+
+
+@dataclass(frozen=True, slots=True)
+class CycleRow:
+    """The time from one cleaning to the next: its rows, and the offset that was taken for zero, m² K/W.
+
+    ``scatter`` and ``systematic`` are standard uncertainties of the offset; NaN without rows to anchor on.
+    """
+
+    cleaning: str
+    source: str
+    rows: int
+    zero_rows: int
+    zero_until: float
+    last: float
+    offset: float
+    scatter: float
+    systematic: float
+
+
+@dataclass(frozen=True, slots=True)
+class Gap:
+    """A time without rows: where it begins, and its length in s."""
+
+    begins: str
+    length: float
+
+
+@dataclass(frozen=True, slots=True)
+class FittedFigure:
+    """A figure from the fit: a parameter of the growth model, or the fouling resistance at a time.
+
+    ``scatter`` and ``systematic`` are its standard uncertainties from the rows' scatter and from tolerances;
+    ``lower`` and ``upper`` are its 95 % bounds from both. ``held`` says why a parameter was not fitted.
+    """
+
+    id: str
+    symbol: str
+    title: str
+    kind: QuantityKind
+    value: float
+    scatter: float
+    systematic: float
+    lower: float
+    upper: float
+    held: str = ""
+
+
+@dataclass(frozen=True, slots=True)
+class SystematicPart:
+    """What is wrong in every row alike: its tolerance, standard uncertainty, and what that moves (SI).
+
+    ``moves`` has the change of each fitted figure for one standard uncertainty, by the figure's id.
+    """
+
+    id: str
+    title: str
+    tolerance: str
+    standard: float
+    kind: QuantityKind
+    distribution: str
+    moves: tuple[tuple[str, float], ...]
+
+
+@dataclass(frozen=True, slots=True)
+class PlotColumn:
+    """One column of the plot over time: mean of the anchored rows in it and the fit there, NaN where none."""
+
+    begins: str
+    mean: float
+    fitted: float
+    cleaned: bool
+
+
+@dataclass(frozen=True, slots=True)
+class SurveyOutcome:
+    """Everything a survey says.
+
+    Rows: ``rows`` in the file = the rules' counts + ``kept``; ``kept`` = ``fitted`` + ``before_cleaning`` +
+    ``not_anchored``. ``negative`` and ``not_resolved`` count among the fitted rows. ``period`` is the longest
+    time since a cleaning that rows cover, in s. ``deviation`` is the standard deviation of the rows about
+    the fit, ``correlation`` that of neighbouring residuals.
+    """
+
+    file: str
+    source: str
+    rows: int
+    kept: int
+    fitted: int
+    before_cleaning: int
+    not_anchored: int
+    negative: int
+    not_resolved: int
+    out_of_order: int
+    not_compared: int
+    first: str
+    last: str
+    rules: tuple[RuleCount, ...]
+    cycles: tuple[CycleRow, ...]
+    gaps: tuple[Gap, ...]
+    model: str
+    model_title: str
+    relation: str
+    figures: tuple[FittedFigure, ...]
+    parts: tuple[SystematicPart, ...]
+    without_accuracy: tuple[str, ...]
+    slope_rows: int
+    deviation: float
+    correlation: float
+    period: float
+    after: float
+    percentile: float
+    plot: tuple[PlotColumn, ...]
+
+    def figure(self, name: str) -> FittedFigure:
+        """A fitted figure by id. Raises ``KeyError``."""
+        for one in self.figures:
+            if one.id == name:
+                return one
+        raise KeyError(name)

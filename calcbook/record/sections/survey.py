@@ -1,0 +1,228 @@
+"""The survey of plant data: rows by rule, cleanings, the fit with its bounds, the allowance it proposes."""
+
+from __future__ import annotations
+
+import math
+
+from calcbook.chain.survey_outcome import FittedFigure, PlotColumn, SurveyOutcome, SystematicPart
+from calcbook.formulas.names import written_name
+from calcbook.quantities import in_unit, unit_factor
+from calcbook.record.blocks import Block, Bullets, Code, Heading, Paragraph, Table
+from calcbook.record.numbers import NOT_KNOWN, number, percent, unit_text
+from calcbook.record.page import Page, counted
+from calcbook.record.survey import DIGITS
+
+PLOT_LINES = 15
+TIME = unit_factor("s")[1]
+ALLOWANCES = ("allowance_proposed", "allowance_fitted", "allowance_lower", "allowance_upper")
+
+
+def survey(page: Page) -> list[Block]:
+    """What plant data say about the fouling of the unit; nothing where the file has no survey."""
+    outcome = page.solved.survey
+    if outcome is None:
+        return []
+    return [
+        Heading(3, "Survey of plant data"),
+        *_rows(outcome),
+        *_cycles(outcome, page),
+        *_plot(outcome, page),
+        *_fit(outcome, page),
+        *_systematic(outcome),
+        *_proposal(outcome, page),
+    ]
+
+
+def _days(seconds: float) -> str:
+    return f"{number(in_unit(seconds, 'days'), DIGITS)} days" if math.isfinite(seconds) else NOT_KNOWN
+
+
+# -- rows --------------------------------------------------------------------------------------------
+
+
+def _rows(outcome: SurveyOutcome) -> list[Block]:
+    rejected = sum(rule.count for rule in outcome.rules)
+    words = (
+        f"History {outcome.file}, {outcome.source or 'no source'}: {counted(outcome.rows, 'row', 'rows')} ="
+        f" {rejected} rejected + {outcome.kept} kept. Of those kept, {outcome.fitted} are fitted,"
+        f" {outcome.before_cleaning} lie before the first cleaning and {outcome.not_anchored} after a cleaning"
+        f" without rows to anchor zero on. Rows kept from {outcome.first} to {outcome.last}."
+    )
+    more = (
+        "A row is rejected by the first rule that it breaks, in the order of the table."
+        f" Steady state was not tested for {counted(outcome.not_compared, 'row', 'rows')} without a row close"
+        f" before. {counted(outcome.out_of_order, 'row stands', 'rows stand')} before the row above in time;"
+        " rows are taken in the order of time."
+    )
+    table = Table(
+        ("Rule", "Rejects", "Limit", "Rows rejected", "First"),
+        tuple((rule.id, rule.rejects, rule.limit, str(rule.count), rule.first) for rule in outcome.rules),
+    )
+    return [Paragraph(words), table, Paragraph(more), *_gaps(outcome)]
+
+
+def _gaps(outcome: SurveyOutcome) -> list[Block]:
+    if not outcome.gaps:
+        return []
+    return [
+        Bullets(tuple(f"No kept rows for {_days(gap.length)} from {gap.begins}." for gap in outcome.gaps))
+    ]
+
+
+def _cycles(outcome: SurveyOutcome, page: Page) -> list[Block]:
+    words = (
+        f"Zero is anchored after each cleaning: the mean resistance of the rows named is the offset on {page.basis}"
+        " that is taken from every row up to the next cleaning, and the fit takes the mean of the model at the"
+        " same times from itself. What a cleaning leaves behind is in the offset, not in the fit."
+    )
+    columns = (
+        "Cleaning",
+        "Source",
+        "Rows",
+        "Last row after",
+        "Rows for zero",
+        "Within",
+        "Offset, m²·K/W",
+        "Standard uncertainty, scatter",
+        "Standard uncertainty, systematic",
+    )
+    rows = tuple(
+        (
+            one.cleaning,
+            one.source or "no source",
+            str(one.rows),
+            _days(one.last),
+            str(one.zero_rows),
+            _days(one.zero_until),
+            *(number(figure, DIGITS) for figure in (one.offset, one.scatter, one.systematic)),
+        )
+        for one in outcome.cycles
+    )
+    return [Paragraph(words), Table(columns, rows)]
+
+
+# -- plot --------------------------------------------------------------------------------------------
+
+
+def _plot(outcome: SurveyOutcome, page: Page) -> list[Block]:
+    words = (
+        f"Fouling resistance on {page.basis} over time, in 1e−4 m²·K/W: o mean of the rows in a column,"
+        " - fit there, * both, | cleaning."
+    )
+    return [Paragraph(words), Code("\n".join(_drawing(outcome.plot)))]
+
+
+def _drawing(columns: tuple[PlotColumn, ...]) -> list[str]:
+    figures = [1e4 * one for column in columns for one in (column.mean, column.fitted) if math.isfinite(one)]
+    low, high = min(0.0, *figures), max(0.0, *figures)
+    step = (high - low) / (PLOT_LINES - 1) or 1.0
+    lines = [[" "] * len(columns) for _ in range(PLOT_LINES)]
+    for place, column in enumerate(columns):
+        for figure, mark in ((column.fitted, "-"), (column.mean, "o")):
+            if math.isfinite(figure):
+                line = lines[PLOT_LINES - 1 - round((1e4 * figure - low) / step)]
+                line[place] = "*" if line[place] == "-" else mark
+    drawn = []
+    for place, line in enumerate(lines):
+        label = f"{high - place * step:7.2f}".replace("-", "−") if place % 2 == 0 else " " * 7
+        drawn.append(f"{label} {''.join(line)}".rstrip())
+    drawn.append(" " * 8 + "".join("|" if column.cleaned else "." for column in columns))
+    half = len(columns) // 2
+    ends = (columns[0].begins, columns[half].begins)
+    drawn.append(f"{'':8}{ends[0]:<{half}}{ends[1]}".rstrip())
+    return drawn
+
+
+# -- fit ---------------------------------------------------------------------------------------------
+
+
+def _fit(outcome: SurveyOutcome, page: Page) -> list[Block]:
+    words = (
+        f"Growth model {outcome.model_title} ({outcome.model}): {outcome.relation}. Least squares over"
+        f" {counted(outcome.fitted, 'row', 'rows')}; standard deviation of a row about the fit"
+        f" {number(outcome.deviation, DIGITS)} m²·K/W, correlation of neighbouring residuals"
+        f" {number(outcome.correlation, 2)}, for which the scatter of the parameters is widened."
+    )
+    counts = (
+        f"{counted(outcome.negative, 'row has', 'rows have')} a resistance below zero and"
+        f" {'is' if outcome.negative == 1 else 'are'} kept; for {outcome.not_resolved} it is less than twice its"
+        " standard uncertainty (not resolved)."
+    )
+    columns = (
+        "Figure",
+        "Meaning",
+        "Fit",
+        "Unit",
+        "Lower 95 % bound",
+        "Upper 95 % bound",
+        "Standard uncertainty, scatter",
+        "Standard uncertainty, systematic",
+    )
+    return [
+        Paragraph(words),
+        Paragraph(counts),
+        Table(columns, tuple(_figure_row(one, page) for one in outcome.figures)),
+    ]
+
+
+def _figure_row(one: FittedFigure, page: Page) -> tuple[str, ...]:
+    meaning = f"{one.title}, on {page.basis}" if "K/W" in one.kind.unit else one.title
+    unit = unit_text(one.kind.unit)
+    if one.held:
+        return (written_name(one.symbol), f"{one.title}; {one.held}", number(one.value), unit, "", "", "", "")
+    fit = number(one.value, DIGITS)
+    if one.kind.dimension == TIME:
+        fit = f"{fit} ({_days(one.value)})"
+    rest = (one.lower, one.upper, one.scatter, one.systematic)
+    return (written_name(one.symbol), meaning, fit, unit, *(number(figure, DIGITS) for figure in rest))
+
+
+def _systematic(outcome: SurveyOutcome) -> list[Block]:
+    """What is wrong in all rows alike, and what one standard uncertainty of it moves."""
+    if not outcome.parts:
+        return [Paragraph("No tolerance is stated: the bounds hold the scatter of the rows alone.")]
+    words = (
+        "What is wrong in all rows alike is carried to each row by the slopes of the chain, taken at"
+        f" {counted(outcome.slope_rows, 'row', 'rows')} spread over all, and from the rows to the fit. The bounds"
+        " are 1.96 times the root of the summed squares of scatter and all parts. Every part counts once, with"
+        " one value for the whole history; a drift starts from nothing at the first row."
+    )
+    names = [name for name, _ in outcome.parts[0].moves]
+    heads = tuple(f"Moves {name}" for name in names)
+    blocks: list[Block] = [
+        Paragraph(words),
+        Table(
+            ("Part", "Tolerance", "Distribution", "Standard uncertainty", *heads),
+            tuple(_part_row(part) for part in outcome.parts),
+        ),
+    ]
+    if outcome.without_accuracy:
+        missing = ", ".join(outcome.without_accuracy)
+        blocks.append(Paragraph(f"No accuracy is stated for {missing}: the bounds leave it out."))
+    return blocks
+
+
+def _part_row(part: SystematicPart) -> tuple[str, ...]:
+    unit = unit_text(part.kind.unit)
+    standard = percent(part.standard, 3) if unit == "1" else f"{number(part.standard, 3)} {unit}"
+    return (
+        part.title,
+        part.tolerance,
+        part.distribution,
+        standard,
+        *(number(moved, 2) for _, moved in part.moves),
+    )
+
+
+def _proposal(outcome: SurveyOutcome, page: Page) -> list[Block]:
+    rows = tuple(
+        (name, page.base.results[name].title, number(page.base.results[name].value, DIGITS))
+        for name in ALLOWANCES
+        if name in page.base.results
+    )
+    words = (
+        "The percentile is that of the fitted resistance with its uncertainty, not of single rows: their scatter"
+        f" is that of the readings. It counts from the anchored zero, on {page.basis}. Other calculations take"
+        " these results by name."
+    )
+    return [Table(("Result", "Meaning", "Value, m²·K/W"), rows), Paragraph(words)]

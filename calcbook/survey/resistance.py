@@ -1,0 +1,161 @@
+"""The fouling resistance of every row: the calculation's own chain, clean, in one call on arrays.
+
+The chain gives the heat of both streams, the mean temperature difference and the clean coefficient at the
+row's own flows and temperatures; the card of plant data makes the fouling resistance from them.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+
+from calcbook.chain.circuit import branch_coefficient
+from calcbook.chain.sensitivity import derivatives
+from calcbook.chain.solve import Solution, solve
+from calcbook.chain.types import CLEAN, Chain, Group
+from calcbook.formulas import parse_expression
+from calcbook.library.operations import RelationOperation, Slopes, run
+from calcbook.library.programs import Program, ProgramStep
+
+Array = np.ndarray
+CARD = "fouling-from-plant-data"
+HOT, COLD, ONE_SIDE = "duty/hot/Q", "duty/cold/Q", "duty/Q"
+# What passes the wall of the hot stream's heat, where a part x of it goes to the surroundings.
+PASSES = parse_expression("Q_h*(1 - x)")
+METHOD, LOSS = "method ", "heat loss"
+ONE = np.ones(())
+
+
+@dataclass(frozen=True)
+class Found:
+    """What each row gives (NaN where it gives nothing): m² K/W, W/(m² K), and 1.
+
+    ``closure`` is NaN throughout where only one stream shows its heat, ``factor`` one where no F is needed.
+    """
+
+    resistance: Array
+    coefficient: Array
+    clean: Array
+    closure: Array
+    factor: Array
+
+    def part(self, places: Array) -> Found:
+        """Some of the rows."""
+        return Found(
+            self.resistance[places],
+            self.coefficient[places],
+            self.clean[places],
+            self.closure[places],
+            self.factor[places],
+        )
+
+
+@dataclass(frozen=True)
+class _Way:
+    """The way from the chain's figures to the resistance: ids by the needs of the card, and its steps."""
+
+    program: Program
+    steps: tuple[ProgramStep, ...]
+    bound: Mapping[str, str]
+    has_closure: bool
+
+    def values(self, solution: Solution, loss: float, count: int) -> dict[str, Array]:
+        values: dict[str, Array] = {
+            name: np.asarray(figure) for name, figure in self.program.constants.items()
+        }
+        for name, step in self.bound.items():
+            values[name] = np.broadcast_to(solution.values[step], (count,)) if step else ONE
+        return values | {"x": np.asarray(loss)}
+
+
+def _way(chain: Chain) -> _Way:
+    """A side whose heat its own flow does not show is taken to carry what the other shows."""
+    program = chain.library.program(CARD)
+    known = {step.id for step in (*chain.steps, *chain.circuit)}
+    one = next(name for name in (HOT, COLD, ONE_SIDE) if name in known)
+    bound = {
+        "Q_h of the stream": HOT if HOT in known else one,
+        "Q_c": COLD if COLD in known else one,
+        "A": chain.results["area installed"],
+        "F": chain.results.get("F", ""),
+        "LMTD": chain.results["LMTD"],
+        "U_c": chain.results["U"],
+    }
+    loses = ProgramStep(
+        "Q_h", "Q_h", CARD, "", RelationOperation(PASSES), {"Q_h": "Q_h of the stream", "x": "x"}
+    )
+    return _Way(program, (loses, *program.steps), bound, HOT in known and COLD in known)
+
+
+def inputs_of(chain: Chain, columns: Mapping[str, Array]) -> dict[str, Array]:
+    """The inputs of the base case, with the measured figures in place of theirs."""
+    return {**chain.case_inputs(""), **{f"given/{symbol}": figures for symbol, figures in columns.items()}}
+
+
+def resistances(chain: Chain, columns: Mapping[str, Array], loss: float) -> Found:
+    """The fouling resistance of every row on the basis area; ``loss`` is the part that the hot stream loses."""
+    way = _way(chain)
+    wanted = tuple(dict.fromkeys(name for name in way.bound.values() if name))
+    solution = solve(chain, inputs_of(chain, columns), CLEAN, keep=wanted)
+    count = len(next(iter(columns.values())))
+    values = way.values(solution, loss, count)
+    with np.errstate(all="ignore"):
+        run(way.steps, values)
+
+    def told(name: str) -> Array:
+        return np.where(solution.converged, np.broadcast_to(values[name], (count,)), np.nan)
+
+    closure = told("closure") if way.has_closure else np.full(count, np.nan)
+    return Found(told(way.program.result), told("U"), told("U_c"), closure, told("F"))
+
+
+def slopes(chain: Chain, columns: Mapping[str, Array], loss: float) -> dict[str, Array]:
+    """Slopes of the resistance of rows in each input (by id), in `heat loss`, and in `method <card>`.
+
+    The last is the slope in the factor of a card's film coefficients, with the surface temperatures as they are.
+    """
+    way, inputs = _way(chain), inputs_of(chain, columns)
+    solution = solve(chain, inputs, CLEAN)
+    count = len(next(iter(columns.values())))
+    values = way.values(solution, loss, count)
+    seeds = [name for name, step in way.bound.items() if step]
+    outer: Slopes = {name: {name: ONE} for name in (*seeds, "x")}
+    run(way.steps, values, outer)
+    local = outer[way.program.result]
+    wanted = tuple(dict.fromkeys(way.bound[name] for name in seeds))
+    traced = derivatives(chain, inputs, CLEAN, wanted, solution)
+    found: dict[str, Array] = {}
+    for name in seeds:
+        for key, slope in traced[way.bound[name]].items():
+            found[key] = found.get(key, np.zeros(count)) + np.broadcast_to(local[name] * slope, (count,))
+    found[LOSS] = np.broadcast_to(local["x"], (count,))
+    found.update(_method_slopes(chain, solution, count))
+    return found
+
+
+def _method_slopes(chain: Chain, solution: Solution, count: int) -> dict[str, Array]:
+    """A film coefficient that is larger by a part lowers the clean resistance by that part of the film's."""
+    found: dict[str, Array] = {}
+    for group in (chain.inner, chain.outer):
+        resistance = np.broadcast_to(solution.values[chain.results[f"R {group.name}"]], (count,))
+        for branch in group.branches:
+            if branch.situation is None:
+                continue
+            share = _share(group, branch.name, chain, solution)
+            chosen = np.broadcast_to(solution.chosen.get(branch.name, np.zeros((), int)), (count,))
+            for number, candidate in enumerate(branch.candidates):
+                used = chosen == number
+                if used.any():
+                    name = METHOD + candidate.method.id
+                    found[name] = found.get(name, np.zeros(count)) + np.where(used, resistance * share, 0.0)
+    return found
+
+
+def _share(group: Group, branch: str, chain: Chain, solution: Solution) -> Array:
+    """The part of a side's coefficient that one of its branches gives."""
+    if len(group.branches) == 1:
+        return np.ones(())
+    whole = solution.values[chain.results[f"h {group.name}"]]
+    return np.asarray(solution.values[branch_coefficient(group, branch)] / whole)

@@ -1,0 +1,163 @@
+"""The rules that reject rows: each has an id, its limit and its count, and takes what the rules before it left.
+
+A row is rejected by the first rule that it breaks, so that the counts and the kept rows add up to the rows
+of the file. A negative fouling resistance breaks no rule.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+
+import numpy as np
+
+from calcbook.calcfile.survey import Survey
+from calcbook.chain.survey_outcome import RuleCount
+from calcbook.quantities import unit_factor
+from calcbook.survey.rows import Rows
+
+Array = np.ndarray
+NOT_APPLIED = "not applied: no limit is stated"
+FLOWS = frozenset(unit_factor(unit)[1] for unit in ("kg/s", "m^3/s", "m/s"))
+
+
+@dataclass(frozen=True, slots=True)
+class Ends:
+    """The givens that are the temperatures at the ends of the unit; empty where a stream has none."""
+
+    hot_inlet: str
+    hot_outlet: str
+    cold_inlet: str
+    cold_outlet: str
+    parallel: bool
+
+    @property
+    def symbols(self) -> tuple[str, ...]:
+        named = (self.hot_inlet, self.hot_outlet, self.cold_inlet, self.cold_outlet)
+        return tuple(symbol for symbol in named if symbol)
+
+    @property
+    def hotter(self) -> tuple[tuple[str, str], ...]:
+        """Pairs of which the first must be hotter: each stream's ends, and the terminals of the unit."""
+        pairs = [
+            (self.hot_inlet, self.hot_outlet),
+            (self.cold_outlet, self.cold_inlet),
+            (self.hot_inlet, self.cold_inlet),
+        ]
+        pairs += (
+            [(self.hot_outlet, self.cold_outlet)]
+            if self.parallel
+            else [(self.hot_inlet, self.cold_outlet), (self.hot_outlet, self.cold_inlet)]
+        )
+        return tuple((one, other) for one, other in pairs if one and other)
+
+
+@dataclass
+class Sieve:
+    """Rows on their way through the rules: ``left`` marks those that no rule has rejected yet."""
+
+    rows: Rows
+    left: Array
+    rules: list[RuleCount] = field(default_factory=list)
+    not_compared: int = 0
+
+    def reject(self, name: str, rejects: str, limit: str, broken: Array | None) -> None:
+        """Apply a rule: the rows left that ``broken`` marks. None: the rule has no limit."""
+        if broken is None:
+            self.rules.append(RuleCount(name, rejects, NOT_APPLIED, 0, ""))
+            return
+        found = self.left & broken
+        self.left = self.left & ~found
+        count = int(np.count_nonzero(found))
+        first = f"row {int(self.rows.numbers[found].min())}" if count else ""
+        self.rules.append(RuleCount(name, rejects, limit, count, first))
+
+
+def sift(rows: Rows, survey: Survey, ends: Ends, reference: Mapping[str, float]) -> Sieve:
+    """The rows after every rule that the measured figures alone decide.
+
+    ``reference`` are the givens of the base case by symbol, to which flows are held.
+    """
+    sieve = Sieve(rows, np.ones(len(rows), dtype=bool))
+    readable = np.isfinite(rows.times)
+    for figures in rows.columns.values():
+        readable &= np.isfinite(figures)
+    sieve.reject("unreadable", "a cell that is empty, no number or no time", "every cell a number", ~readable)
+    sieve.reject(
+        "duplicate time stamp",
+        "a time that a row above has",
+        "the first row of a time stays",
+        _repeated(sieve),
+    )
+    for symbol, column in survey.columns.items():
+        figures = rows.columns[symbol]
+        if column.low is None or column.high is None:
+            sieve.reject(f"sensor range / {symbol}", f"{column.head} beyond its range", "", None)
+            continue
+        outside = ~((figures >= column.low.value) & (figures <= column.high.value))
+        sieve.reject(
+            f"sensor range / {symbol}",
+            f"{column.head} beyond its range",
+            f"{column.low.text} to {column.high.text}",
+            outside,
+        )
+    sieve.reject(
+        "temperature cross",
+        "temperatures that no unit can have, such as swapped columns",
+        "; ".join(f"{one} > {other}" for one, other in ends.hotter),
+        _crossed(rows, ends, reference),
+    )
+    _reject_unsteady(sieve, survey, ends)
+    _reject_flows(sieve, survey, reference)
+    return sieve
+
+
+def _repeated(sieve: Sieve) -> Array:
+    """Rows whose time a row left above them has already."""
+    broken = np.zeros(len(sieve.rows), dtype=bool)
+    places = np.flatnonzero(sieve.left)
+    broken[places[1:]] = np.diff(sieve.rows.times[places]) == 0.0
+    return broken
+
+
+def _crossed(rows: Rows, ends: Ends, reference: Mapping[str, float]) -> Array:
+    broken = np.zeros(len(rows), dtype=bool)
+    for one, other in ends.hotter:
+        hot, cold = (rows.columns.get(symbol, reference[symbol]) for symbol in (one, other))
+        broken |= ~np.asarray(hot > cold)
+    return broken
+
+
+def _reject_unsteady(sieve: Sieve, survey: Survey, ends: Ends) -> None:
+    """Rows whose temperatures moved since the row before; rows across a gap are not compared, and counted."""
+    name, rejects = "steady state", "a temperature that moved since the row before"
+    limit, gap = survey.rules.steady, survey.rules.gap
+    if limit is None:
+        sieve.reject(name, rejects, "", None)
+        return
+    places = np.flatnonzero(sieve.left)
+    times = sieve.rows.times[places]
+    moved = np.zeros(max(len(places) - 1, 0))
+    for symbol in ends.symbols:
+        if symbol in sieve.rows.columns:
+            moved = np.maximum(moved, np.abs(np.diff(sieve.rows.columns[symbol][places])))
+    near = np.diff(times) <= (gap.value if gap is not None else np.inf)
+    broken = np.zeros(len(sieve.rows), dtype=bool)
+    broken[places[1:]] = near & (moved > limit.value)
+    sieve.not_compared = len(places) - int(np.count_nonzero(near)) if len(places) else 0
+    sieve.reject(name, rejects, f"at most {limit.text}", broken)
+
+
+def _reject_flows(sieve: Sieve, survey: Survey, reference: Mapping[str, float]) -> None:
+    limit = survey.rules.flow_ratio
+    for symbol, figures in sieve.rows.columns.items():
+        column = survey.columns[symbol]
+        if unit_factor(column.unit)[1] not in FLOWS:
+            continue
+        name, rejects = f"flow ratio / {symbol}", f"{column.head} to {symbol} of the base case out of range"
+        if limit is None:
+            sieve.reject(name, rejects, "", None)
+            continue
+        ratio = figures / reference[symbol]
+        broken = ~((ratio >= limit[0].value) & (ratio <= limit[1].value))
+        sieve.reject(name, rejects, f"{limit[0].text} to {limit[1].text}", broken)
