@@ -112,7 +112,6 @@ def outlets(
         tube = tube_film(m_hot, hot, T_wall) * (1 + errors.get("tube film", 0.0))
         inner = OUTSIDE / BORE / tube
         overall = 1 / (inner + wall_resistance + deposit + 1 / shell)
-        # The tube film sees the clean unit's wall in the film that the chain calculates, the fouled one's in truth.
         T_wall = hot - overall * inner * (hot - cold)
         hot_rate, cold_rate = m_hot * water(hot)[1], m_cold * water(cold)[1]
         smaller, ratio = (
