@@ -100,7 +100,7 @@ class SurveyOutcome:
     Rows: ``rows`` in the file = the rules' counts + ``kept``; ``kept`` = ``fitted`` + ``before_cleaning`` +
     ``not_anchored``. ``negative`` and ``not_resolved`` count among the fitted rows. ``period`` is the longest
     time since a cleaning that rows cover, in s. ``deviation`` is the standard deviation of the rows about
-    the fit, ``correlation`` that of neighbouring residuals.
+    the fit, ``correlation`` that of neighbouring residuals. ``row_relations`` make the resistance of a row.
     """
 
     file: str
@@ -122,6 +122,7 @@ class SurveyOutcome:
     model: str
     model_title: str
     relation: str
+    row_relations: str
     figures: tuple[FittedFigure, ...]
     parts: tuple[SystematicPart, ...]
     without_accuracy: tuple[str, ...]

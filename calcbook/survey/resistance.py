@@ -15,9 +15,10 @@ from calcbook.chain.circuit import branch_coefficient
 from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.solve import Solution, solve
 from calcbook.chain.types import CLEAN, Chain, Group
-from calcbook.formulas import parse_expression
+from calcbook.formulas import evaluate, parse_expression, write
+from calcbook.library.cards import Assignment, Limit
 from calcbook.library.operations import RelationOperation, Slopes, run
-from calcbook.library.programs import Program, ProgramStep
+from calcbook.library.programs import Program, ProgramLimit, ProgramStep
 
 Array = np.ndarray
 CARD = "fouling-from-plant-data"
@@ -33,6 +34,7 @@ class Found:
     """What each row gives (NaN where it gives nothing): m² K/W, W/(m² K), and 1.
 
     ``closure`` is NaN throughout where only one stream shows its heat, ``factor`` one where no F is needed.
+    ``outside`` has each limit of the card with the rows that it does not hold for.
     """
 
     resistance: Array
@@ -40,6 +42,7 @@ class Found:
     clean: Array
     closure: Array
     factor: Array
+    outside: tuple[tuple[Limit, Array], ...]
 
     def part(self, places: Array) -> Found:
         """Some of the rows."""
@@ -49,6 +52,7 @@ class Found:
             self.clean[places],
             self.closure[places],
             self.factor[places],
+            tuple((limit, outside[places]) for limit, outside in self.outside),
         )
 
 
@@ -89,6 +93,14 @@ def _way(chain: Chain) -> _Way:
     return _Way(program, (loses, *program.steps), bound, HOT in known and COLD in known)
 
 
+def relations_of(chain: Chain) -> str:
+    """The relations that make the resistance of a row, as text."""
+    lines = (line for line in chain.library.program(CARD).method.lines if isinstance(line, Assignment))
+    return "; ".join(
+        [f"Q_h = {write(PASSES)}", *(f"{line.symbol} = {write(line.relation)}" for line in lines)]
+    )
+
+
 def inputs_of(chain: Chain, columns: Mapping[str, Array]) -> dict[str, Array]:
     """The inputs of the base case, with the measured figures in place of theirs."""
     return {**chain.case_inputs(""), **{f"given/{symbol}": figures for symbol, figures in columns.items()}}
@@ -108,7 +120,15 @@ def resistances(chain: Chain, columns: Mapping[str, Array], loss: float) -> Foun
         return np.where(solution.converged, np.broadcast_to(values[name], (count,)), np.nan)
 
     closure = told("closure") if way.has_closure else np.full(count, np.nan)
-    return Found(told(way.program.result), told("U"), told("U_c"), closure, told("F"))
+    outside = tuple(
+        (item.limit, np.broadcast_to(~_holds(item, values), (count,))) for item in way.program.limits
+    )
+    return Found(told(way.program.result), told("U"), told("U_c"), closure, told("F"), outside)
+
+
+def _holds(item: ProgramLimit, values: Mapping[str, Array]) -> Array:
+    arguments = {symbol: values[bound] for symbol, bound in item.inputs.items()}
+    return np.asarray(evaluate(item.limit.that, arguments), dtype=bool)
 
 
 def slopes(chain: Chain, columns: Mapping[str, Array], loss: float) -> dict[str, Array]:

@@ -23,14 +23,14 @@ from calcbook.chain.survey_outcome import (
 )
 from calcbook.chain.types import CLEAN, Chain, ChainCheck, OpenItem
 from calcbook.faults import Collector
-from calcbook.formulas import parse_expression
+from calcbook.formulas import parse_expression, write
 from calcbook.library import vocabulary
 from calcbook.library.cards import Limit
-from calcbook.quantities import DIMENSIONLESS, QuantityKind
+from calcbook.quantities import QuantityKind
 from calcbook.survey.bounds import NORMAL_95, Part, normal_quantile, parts_of
 from calcbook.survey.fitting import Data, Fit, fit, sample
 from calcbook.survey.growth import GrowthModel, growth_model
-from calcbook.survey.resistance import CARD, Found, resistances, slopes
+from calcbook.survey.resistance import CARD, Found, relations_of, resistances, slopes
 from calcbook.survey.rows import Rows, moment_text, read_rows
 from calcbook.survey.rules import Ends, Sieve, sift
 
@@ -41,6 +41,8 @@ PLOT_COLUMNS = 72
 # Rows that a fit must have beyond its parameters and zeros.
 FEWEST_FREE = 5
 ALLOWANCE = "allowance_fitted"
+# How far beyond the longest time since a cleaning in the rows a model may be used without a caution.
+REACH, PERIOD = "1.5", "t_data"
 
 
 def surveyed(solved: Solved, collector: Collector) -> Solved | None:
@@ -55,11 +57,12 @@ def surveyed(solved: Solved, collector: Collector) -> Solved | None:
     outcome = work.outcome()
     if outcome is None:
         return None
+    checks = work.checks(outcome)
     base = replace(
         solved.base,
         results={**solved.base.results, **work.results(outcome)},
-        checks=(*solved.base.checks, *work.checks(outcome)),
-        open_items=(*solved.base.open_items, *work.open_items(outcome)),
+        checks=(*solved.base.checks, *checks),
+        open_items=(*solved.base.open_items, *work.open_items(outcome), *work.limit_items(checks)),
     )
     return replace(
         solved, cases=(base, *solved.cases[1:]), cards={**solved.cards, **work.cards()}, survey=outcome
@@ -135,7 +138,7 @@ class _Survey:
         found = (
             resistances(self.chain, columns, self.loss)
             if len(places)
-            else Found(empty, empty, empty, empty, empty)
+            else Found(empty, empty, empty, empty, empty, ())
         )
         self.reject(
             sieve,
@@ -231,6 +234,7 @@ class _Survey:
             model=model.card.id,
             model_title=model.card.title,
             relation=model.relation,
+            row_relations=relations_of(self.chain),
             figures=figures,
             parts=told_parts,
             without_accuracy=tuple(without),
@@ -265,11 +269,10 @@ class _Survey:
         ):
             scatter = float(np.sqrt(weights @ found.scatter @ weights))
             systematic = float(np.linalg.norm(weights @ moved))
+            best = float(best)
             width = NORMAL_95 * math.hypot(scatter, systematic)
             figures.append(
-                FittedFigure(
-                    name, symbol, title, kind, float(best), scatter, systematic, best - width, best + width
-                )
+                FittedFigure(name, symbol, title, kind, best, scatter, systematic, best - width, best + width)
             )
         for symbol, held in found.model.held.items():
             figures.append(_held(found.model, symbol, held))
@@ -386,41 +389,63 @@ class _Survey:
         return {name: Result(name, *row) for name, row in rows.items()}
 
     def checks(self, outcome: SurveyOutcome) -> tuple[CheckResult, ...]:
-        """Limits on what the survey may be used for; cautions."""
-        assert self.kept is not None
-        time = vocabulary()["time"].dimension
-        values = {
-            "t": np.asarray(outcome.after),
-            "t_data": np.asarray(outcome.period),
-            "c": np.asarray(np.mean(np.abs(self.kept.found.closure))),
-            "F": np.asarray(np.min(self.kept.found.factor)),
-        }
-        dimensions = {"t": time, "t_data": time, "c": DIMENSIONLESS, "F": DIMENSIONLESS}
-        limits = (
-            ("extrapolation", "t <= 1.5*t_data", "the model is fitted to the time that the rows cover"),
-            ("closure", "c <= 0.05", "mean of the kept rows: what the two streams show must agree"),
-            (
-                "correction factor",
-                "F >= 0.8",
-                "smallest of the kept rows: below it U follows small errors of temperature",
-            ),
+        """Limits on what the survey may be used for: of the model at the fit, of the rows, of its reach."""
+        return (*self.model_checks(outcome), *self.row_checks())
+
+    def model_checks(self, outcome: SurveyOutcome) -> list[CheckResult]:
+        """The card's own limits with the fitted parameters, and how far beyond the rows the proposal reaches."""
+        assert self.model is not None
+        model = self.model
+        known = {one.symbol: one.value for one in outcome.figures if one.id != ALLOWANCE}
+        values = {name: np.asarray(figure) for name, figure in {**known, model.time: outcome.after}.items()}
+        dimensions = {item.name: item.need.quantity.dimension for item in model.program.needs}
+        values[PERIOD], dimensions[PERIOD] = np.asarray(outcome.period), dimensions[model.time]
+        reach = Limit(
+            "extrapolation",
+            parse_expression(f"{model.time} <= {REACH}*{PERIOD}"),
+            "caution",
+            "the model is fitted to the time since cleaning that the rows cover",
+            "common practice",
+            "common practice",
+            self.survey.place,
         )
-        solution = Solution(CLEAN, values, {}, np.ones((), dtype=bool))
-        found = []
-        for name, that, because in limits:
-            limit = Limit(
-                name,
-                parse_expression(that),
-                "caution",
-                because,
-                "common practice",
-                "common practice",
-                self.survey.place,
+        limits = [
+            ChainCheck(
+                f"survey / {item.card} / {item.limit.id}", "survey", item.card, item.limit, item.inputs
             )
-            bound = {symbol: symbol for symbol in limit.that.symbols}
-            check = ChainCheck(f"survey / {name}", "survey", CARD, limit, bound)
-            found.append(evaluate_check(check, solution, "", dimensions))
-        return tuple(found)
+            for item in model.program.limits
+        ]
+        symbols = {symbol: symbol for symbol in (model.time, PERIOD)}
+        limits.append(ChainCheck("survey / extrapolation", "survey", model.card.id, reach, symbols))
+        solution = Solution(CLEAN, values, {}, np.ones((), dtype=bool))
+        return [evaluate_check(check, solution, "", dimensions) for check in limits]
+
+    def row_checks(self) -> list[CheckResult]:
+        """The limits of the card of plant data: how many of the kept rows lie outside."""
+        assert self.kept is not None
+        found = []
+        for limit, outside in self.kept.found.outside:
+            count = int(np.count_nonzero(outside))
+            found.append(
+                CheckResult(
+                    f"survey / {CARD} / {limit.id}",
+                    "survey",
+                    CARD,
+                    CLEAN,
+                    "",
+                    write(limit.that),
+                    f"{count} of {len(outside)} rows outside",
+                    write(limit.that),
+                    count / len(outside),
+                    "1",
+                    limit.level,
+                    "outside" if count else "within",
+                    limit.because,
+                    limit.source,
+                    limit.standing,
+                )
+            )
+        return found
 
     def open_items(self, outcome: SurveyOutcome) -> tuple[OpenItem, ...]:
         """Figures without a source, and a model that the data do not determine."""
@@ -440,6 +465,14 @@ class _Survey:
             for name, source in sources.items()
             if source.strip(" .").casefold() in EMPTY_SOURCES
         ) + self.fit_items(outcome)
+
+    def limit_items(self, checks: tuple[CheckResult, ...]) -> tuple[OpenItem, ...]:
+        """Stop and range limits of the survey that do not hold; the rules and the model are the cure."""
+        return tuple(
+            OpenItem(check.id, "check", f"{check.id}: {check.figure}, limit {check.limit}: {check.state}.")
+            for check in checks
+            if check.level in ("stop", "range") and check.state == "outside"
+        )
 
     def fit_items(self, outcome: SurveyOutcome) -> tuple[OpenItem, ...]:
         wide = [
@@ -465,7 +498,9 @@ class _Survey:
 def _held(model: GrowthModel, symbol: str, value: float) -> FittedFigure:
     need = next(item.need for item in model.program.needs if item.need.symbol == symbol)
     kind: QuantityKind = need.quantity
-    why = "held: the zero is anchored on the data"
+    why = "not fitted: the value that the card takes where none is stated"
+    if need.absent is None:
+        why = "not fitted: it shifts the zero, which is anchored on the data"
     nan = math.nan
     return FittedFigure(f"fitted {symbol}", symbol, kind.meaning, kind, value, nan, nan, nan, nan, why)
 

@@ -6,6 +6,7 @@ import csv
 from dataclasses import replace
 from pathlib import Path
 
+import numpy as np
 from history import DAY, HEADS, SHELL_FILM, STATED, WALL, Truth, cells
 
 from calcbook.chain.outcome import Solved
@@ -69,6 +70,7 @@ survey:
   model: kern-seaton-1959
   propose: {{after: 9 months, percentile: 90 %, source: test}}
 """
+ROW_OF_HEADS = [HEADS[name] for name in ("t", "T_hi", "T_ho", "T_ci", "T_co", "m_hot", "m_cold")]
 AFTER = 9 / 12 * 365.25 * DAY
 
 
@@ -76,7 +78,7 @@ def write_history(folder: Path, rows: list[list[str]], heads: list[str] | None =
     """The history beside the calculation file."""
     with (folder / "history.csv").open("w", encoding="utf-8", newline="") as stream:
         writer = csv.writer(stream, lineterminator="\n")
-        writer.writerow(heads or [HEADS[name] for name in ("t", "T_hi", "T_ho", "T_ci", "T_co", "m_hot", "m_cold")])
+        writer.writerow(heads or ROW_OF_HEADS)
         writer.writerows(rows)
 
 
@@ -90,15 +92,16 @@ def solved_survey(folder: Path, rows: list[list[str]], survey: str = SURVEY, coo
 
 def with_rows(solved: Solved, shown: dict) -> Solved:
     """A solved calculation with the survey of another history in place of its own."""
+    columns = zip(*cells(shown), strict=True)
+    texts = {head: "\n".join(column) for head, column in zip(ROW_OF_HEADS, columns, strict=True)}
+    return with_history(solved, len(shown["t"]), texts)
+
+
+def with_history(solved: Solved, count: int, columns: dict[str, str]) -> Solved:
+    """The same, from the texts of the columns."""
     calculation = solved.chain.calculation
     assert calculation.survey is not None
-    heads = [HEADS[name] for name in ("t", "T_hi", "T_ho", "T_ci", "T_co", "m_hot", "m_cold")]
-    columns = zip(*cells(shown), strict=True)
-    history = replace(
-        calculation.survey.history,
-        rows=len(shown["t"]),
-        columns={head: "\n".join(column) for head, column in zip(heads, columns, strict=True)},
-    )
+    history = replace(calculation.survey.history, rows=count, columns=columns)
     survey = replace(calculation.survey, history=history)
     chain = replace(solved.chain, calculation=replace(calculation, survey=survey))
     collector = Collector()
@@ -110,8 +113,6 @@ def with_rows(solved: Solved, shown: dict) -> Solved:
 
 def true_figures(truth: Truth) -> dict[str, float]:
     """What the fitted figures of a history should be."""
-    import numpy as np
-
     return {
         "fitted R_inf": truth.R_inf,
         "fitted tau": truth.tau,

@@ -58,7 +58,11 @@ def _rows(outcome: SurveyOutcome) -> list[Block]:
         ("Rule", "Rejects", "Limit", "Rows rejected", "First"),
         tuple((rule.id, rule.rejects, rule.limit, str(rule.count), rule.first) for rule in outcome.rules),
     )
-    return [Paragraph(words), table, Paragraph(more), *_gaps(outcome)]
+    relations = (
+        "Each row kept goes through the chain above, clean, at its own flows and temperatures:"
+        f" {outcome.row_relations}, where x is the heat loss."
+    )
+    return [Paragraph(words), table, Paragraph(more), *_gaps(outcome), Paragraph(relations)]
 
 
 def _gaps(outcome: SurveyOutcome) -> list[Block]:
