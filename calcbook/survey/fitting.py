@@ -8,7 +8,7 @@ biases nothing, and whatever is wrong in all rows of a cycle by the same amount 
 from __future__ import annotations
 
 import itertools
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -17,10 +17,11 @@ from calcbook.survey.growth import RESISTANCE, TIME, GrowthModel
 
 Array = np.ndarray
 # Rows on which the best start is looked for.
-START_ROWS = 2000
+START_ROWS = 1000
 PASSES = 200
-# Relative change of the sum of squares and of every parameter at which the fit stands still.
-STILL = 1e-10
+# Relative change of every parameter at which the fit stands still; what rounding does to a sum of squares.
+STILL, ROUNDING = 1e-11, 1e-12
+LEAST_DAMPING = 1e-12
 # Beyond this the parameters cannot be told from each other by the data.
 WORST_CONDITION = 1e8
 # Neighbouring rows more alike than this say nothing about the scatter of their mean.
@@ -54,17 +55,17 @@ class Data:
             return sums / np.bincount(anchored, minlength=count)
 
     def anchored(self, figures: Array) -> Array:
-        """Figures (n, or n by m) less their mean over the rows that anchor zero in their cycle."""
+        """Figures (n, or m by n) less their mean over the rows that anchor zero in their cycle."""
         if figures.ndim == 1:
             return figures - self.zero_means(figures)[self.cycles]
-        return np.stack([self.anchored(column) for column in figures.T], axis=1)
+        return np.array([self.anchored(row) for row in figures]).reshape(figures.shape)
 
 
 @dataclass(frozen=True)
 class Fit:
     """Parameters with what they rest on.
 
-    ``slopes`` are those of the anchored model in each parameter (n by parameters). ``deviation`` is the
+    ``slopes`` are those of the anchored model in each parameter (parameters by n). ``deviation`` is the
     standard deviation of single rows, ``correlation`` that of neighbouring residuals, ``scatter`` the
     covariance of the parameters that follows from both. ``determined`` is False where the search did not
     come to rest, or the data do not tell the parameters apart.
@@ -81,13 +82,13 @@ class Fit:
     determined: bool
 
     def moved_by(self, errors: Array, places: Array) -> Array:
-        """What errors of the resistance at some rows (m by kinds) move each parameter by (parameters by kinds).
+        """What errors of the resistance at some rows (kinds by m) move each parameter by (parameters by kinds).
 
         The rows stand for all: they are spread over them and hold rows that anchor each cycle.
         """
         part = self.data.part(places)
         slopes = part.anchored(self.model.value_and_slopes(self.parameters, part.times)[1])
-        return np.linalg.lstsq(slopes, part.anchored(errors), rcond=None)[0]
+        return np.linalg.lstsq(slopes.T, part.anchored(errors).T, rcond=None)[0]
 
 
 def fit(model: GrowthModel, data: Data) -> Fit:
@@ -95,9 +96,10 @@ def fit(model: GrowthModel, data: Data) -> Fit:
     part = data.part(np.unique(np.concatenate([spread(len(data), START_ROWS), _some_zero_rows(data)])))
     model = _without_lost(model, part)
     searched = [_search(model, part, start) for start in _starts(model, part)]
-    best = min(searched, key=lambda found: found[1])
-    parameters, _, rested = _search(model, data, best[0]) if len(part) < len(data) else best
-    return _finished(model, data, parameters, rested)
+    best = min(searched, key=lambda found: found.total)
+    if len(part) < len(data):
+        best = _search(model, data, best.parameters, LEAST_DAMPING)
+    return _finished(model, data, best)
 
 
 def spread(count: int, most: int) -> Array:
@@ -122,12 +124,12 @@ def sample(data: Data, most: int) -> Array:
 def _without_lost(model: GrowthModel, data: Data) -> GrowthModel:
     """The model without parameters that only shift the zero, which the anchor takes away."""
     start = _starts(model, data)[0]
-    slopes = data.anchored(model.value_and_slopes(start, data.times)[1])
     whole = model.value_and_slopes(start, data.times)[1]
+    slopes = data.anchored(whole)
     lost = [
         symbol
         for number, symbol in enumerate(model.symbols)
-        if np.abs(slopes[:, number]).max() <= 1e-9 * np.abs(whole[:, number]).max()
+        if np.abs(slopes[number]).max() <= 1e-9 * np.abs(whole[number]).max()
     ]
     return model.holding(dict.fromkeys(lost, 0.0))
 
@@ -146,63 +148,69 @@ def _starts(model: GrowthModel, data: Data) -> list[Array]:
     return [np.array(start) for start in itertools.product(*choices)]
 
 
-def _search(model: GrowthModel, data: Data, start: Array) -> tuple[Array, float, bool]:
-    """Gauss and Newton's steps, damped after Levenberg where they do not lead down: parameters, sum, rested."""
+@dataclass(frozen=True)
+class _Search:
+    """Where a search came to: parameters, sum of squares, whether it rests, residuals, anchored slopes."""
+
+    parameters: Array
+    total: float
+    rests: bool
+    residuals: Array
+    slopes: Array
+
+
+def _search(model: GrowthModel, data: Data, start: Array, damping: float = 1e-3) -> _Search:
+    """Gauss and Newton's steps, damped after Levenberg where they do not lead down, until they stand still."""
     wanted = data.anchored(data.values)
+    # A sum may rise by its own rounding.
+    rounding = ROUNDING * ROUNDING * float(wanted @ wanted)
     scale = np.abs(start)
-    parameters, damping = start, 1e-3
     with np.errstate(all="ignore"):
-        values, slopes = model.value_and_slopes(parameters, data.times)
-        residuals = wanted - data.anchored(values)
-        total = float(residuals @ residuals)
-        if not np.isfinite(total):
-            return start, np.inf, False
-        for _ in range(PASSES):
-            scaled = data.anchored(slopes) * scale
-            normal, right = scaled.T @ scaled, scaled.T @ residuals
+        here = _evaluated(model, data, wanted, start)
+        for _ in range(PASSES if np.isfinite(here.total) else 0):
+            normal = here.slopes @ here.slopes.T * np.outer(scale, scale)
+            right = here.slopes @ here.residuals * scale
             diagonal = np.diag(np.maximum(np.diag(normal), 1e-12 * max(float(np.trace(normal)), 1e-300)))
             try:
                 step = scale * np.linalg.solve(normal + damping * diagonal, right)
             except np.linalg.LinAlgError:
-                return parameters, total, False
-            tried = parameters + step
-            values, following = model.value_and_slopes(tried, data.times)
-            left = wanted - data.anchored(values)
-            sum_there = float(left @ left)
-            if np.isfinite(sum_there) and sum_there <= total:
-                still = bool(np.all(np.abs(step) <= STILL * np.maximum(np.abs(tried), 1e-6 * scale)))
-                still |= total - sum_there <= STILL * STILL * total
-                parameters, total, residuals, slopes = tried, sum_there, left, following
-                damping = max(damping * 0.2, 1e-12)
-                if still:
-                    return parameters, total, True
+                return here
+            tried = _evaluated(model, data, wanted, here.parameters + step)
+            small = bool(np.all(np.abs(step) <= STILL * np.abs(tried.parameters)))
+            if np.isfinite(tried.total) and tried.total <= here.total * (1.0 + ROUNDING) + rounding:
+                here, damping = tried, max(damping * 0.2, LEAST_DAMPING)
             else:
                 damping *= 5.0
-                if damping > 1e12:
-                    return parameters, total, bool(np.all(np.abs(step) <= 1e-6 * np.abs(parameters)))
-    return parameters, total, False
+            if small:
+                return replace(here, rests=True)
+    return here
 
 
-def _finished(model: GrowthModel, data: Data, parameters: Array, rested: bool) -> Fit:
+def _evaluated(model: GrowthModel, data: Data, wanted: Array, parameters: Array) -> _Search:
     values, slopes = model.value_and_slopes(parameters, data.times)
-    slopes = data.anchored(slopes)
-    residuals = data.anchored(data.values) - data.anchored(values)
+    residuals = wanted - data.anchored(values)
+    total = float(residuals @ residuals)
+    return _Search(
+        parameters, total if np.isfinite(total) else np.inf, False, residuals, data.anchored(slopes)
+    )
+
+
+def _finished(model: GrowthModel, data: Data, found: _Search) -> Fit:
     cycles = len(np.unique(data.cycles))
-    freedom = len(data) - len(parameters) - cycles
-    deviation = float(np.sqrt(residuals @ residuals / freedom)) if freedom > 0 else np.nan
-    correlation = _neighbours_alike(data, residuals)
-    scatter, condition = _scatter(data, slopes, parameters)
-    scatter = scatter * deviation**2 * (1.0 + correlation) / (1.0 - correlation)
+    freedom = len(data) - len(found.parameters) - cycles
+    deviation = float(np.sqrt(found.total / freedom)) if freedom > 0 else np.nan
+    correlation = _neighbours_alike(data, found.residuals)
+    scatter, condition = _scatter(data, found.slopes, found.parameters)
     return Fit(
         model,
         data,
-        parameters,
-        residuals,
-        slopes,
+        found.parameters,
+        found.residuals,
+        found.slopes,
         deviation,
         correlation,
-        scatter,
-        rested and condition <= WORST_CONDITION,
+        scatter * deviation**2 * (1.0 + correlation) / (1.0 - correlation),
+        found.rests and condition <= WORST_CONDITION,
     )
 
 
@@ -211,21 +219,19 @@ def _scatter(data: Data, slopes: Array, parameters: Array) -> tuple[Array, float
 
     A row that anchors zero moves every row of its cycle as well.
     """
-    scale = np.linalg.norm(slopes, axis=0)
-    scaled = slopes / np.where(scale > 0.0, scale, 1.0)
-    normal = scaled.T @ scaled
+    scale = np.linalg.norm(slopes, axis=1)
+    scale = np.where(scale > 0.0, scale, 1.0)
+    normal = slopes @ slopes.T / np.outer(scale, scale)
     condition = float(np.linalg.cond(normal))
     try:
-        gain = np.linalg.solve(normal, scaled.T).T / np.where(scale > 0.0, scale, 1.0)
+        gain = np.linalg.solve(normal * np.outer(scale, scale), slopes)
     except np.linalg.LinAlgError:
         return np.full((len(parameters), len(parameters)), np.inf), np.inf
     count = int(data.cycles.max()) + 1
     anchors = np.bincount(data.cycles[data.zero], minlength=count)
-    shared = np.stack(
-        [np.bincount(data.cycles, weights=column, minlength=count) for column in gain.T], axis=1
-    )
-    of_row = gain - np.where(data.zero[:, None], (shared / np.maximum(anchors, 1)[:, None])[data.cycles], 0.0)
-    return of_row.T @ of_row, condition
+    shared = np.array([np.bincount(data.cycles, weights=row, minlength=count) for row in gain])
+    gain[:, data.zero] -= (shared / np.maximum(anchors, 1))[:, data.cycles[data.zero]]
+    return gain @ gain.T, condition
 
 
 def _neighbours_alike(data: Data, residuals: Array) -> float:

@@ -61,13 +61,13 @@ class GrowthModel:
         return np.broadcast_to(values[self.program.result], np.shape(times))
 
     def value_and_slopes(self, parameters: Array, times: Array) -> tuple[Array, Array]:
-        """The resistance (n), and its slopes in each parameter (n by parameters)."""
+        """The resistance (n), and its slopes in each parameter (parameters by n)."""
         values = self._bound(parameters, times)
         slopes: Slopes = {need.symbol: {need.symbol: ONE} for need in self.parameters}
         run(self.program.steps, values, slopes)
         found = slopes.get(self.program.result, {})
-        columns = [np.broadcast_to(found.get(symbol, np.zeros(())), times.shape) for symbol in self.symbols]
-        return np.broadcast_to(values[self.program.result], times.shape), np.stack(columns, axis=1)
+        rows = [np.broadcast_to(found.get(symbol, np.zeros(())), times.shape) for symbol in self.symbols]
+        return np.broadcast_to(values[self.program.result], times.shape), np.array(rows)
 
     def _bound(self, parameters: Array, times: Array) -> dict[str, Array]:
         values: dict[str, Array] = {

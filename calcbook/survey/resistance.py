@@ -6,8 +6,8 @@ row's own flows and temperatures; the card of plant data makes the fouling resis
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass
+from collections.abc import Collection, Mapping
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -110,7 +110,7 @@ def resistances(chain: Chain, columns: Mapping[str, Array], loss: float) -> Foun
     """The fouling resistance of every row on the basis area; ``loss`` is the part that the hot stream loses."""
     way = _way(chain)
     wanted = tuple(dict.fromkeys(name for name in way.bound.values() if name))
-    solution = solve(chain, inputs_of(chain, columns), CLEAN, keep=wanted)
+    solution = solve(_only(chain, wanted), inputs_of(chain, columns), CLEAN, keep=wanted)
     count = len(next(iter(columns.values())))
     values = way.values(solution, loss, count)
     with np.errstate(all="ignore"):
@@ -124,6 +124,16 @@ def resistances(chain: Chain, columns: Mapping[str, Array], loss: float) -> Foun
         (item.limit, np.broadcast_to(~_holds(item, values), (count,))) for item in way.program.limits
     )
     return Found(told(way.program.result), told("U"), told("U_c"), closure, told("F"), outside)
+
+
+def _only(chain: Chain, wanted: Collection[str]) -> Chain:
+    """The chain without the steps after the circuit that nothing wanted follows from."""
+    needed, steps = set(wanted), []
+    for step in reversed(chain.circuit):
+        if step.id in needed:
+            needed |= set(step.inputs.values())
+            steps.append(step)
+    return replace(chain, circuit=tuple(reversed(steps)))
 
 
 def _holds(item: ProgramLimit, values: Mapping[str, Array]) -> Array:

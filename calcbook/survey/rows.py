@@ -14,7 +14,7 @@ from calcbook.calcfile.survey import Survey
 
 Array = np.ndarray
 NUMBER = re.compile(r"[+-]?([0-9]+\.?[0-9]*|\.[0-9]+)([eE][+-]?[0-9]{1,3})?")
-NUMBER_CHARACTERS = frozenset("0123456789+-.eE")
+NUMBER_CHARACTERS = frozenset("0123456789+-.eE\n")
 DATE_TIME = re.compile(r"[0-9]{4}-[0-9]{2}-[0-9]{2}([ T][0-9]{2}:[0-9]{2}(:[0-9]{2})?)?")
 EPOCH = datetime.datetime(1970, 1, 1)
 
@@ -41,22 +41,23 @@ def read_rows(survey: Survey) -> Rows:
     history = survey.history
     if not history.rows:
         return Rows(np.zeros(0), {symbol: np.zeros(0) for symbol in survey.columns}, np.zeros(0, int), 0)
-    cells = history.columns[survey.time_head].split("\n")
-    times = survey.time_factor * read_numbers(cells) if survey.time_unit else read_moments(cells)
+    stamps = history.columns[survey.time_head]
+    times = survey.time_factor * read_numbers(stamps) if survey.time_unit else read_moments(stamps)
     readable = times[np.isfinite(times)]
     order = np.argsort(times, kind="stable")
     columns = {}
     for symbol, column in survey.columns.items():
-        figures = read_numbers(history.columns[column.head].split("\n"))
+        figures = read_numbers(history.columns[column.head])
         columns[symbol] = (figures * column.factor + column.offset)[order]
     return Rows(times[order], columns, order + 1, int(np.count_nonzero(np.diff(readable) < 0.0)))
 
 
-def read_numbers(cells: list[str]) -> Array:
-    """Plain decimal numbers; NaN for anything else, such as an empty cell, a word or a decimal comma."""
-    if set().union(*cells) <= NUMBER_CHARACTERS:
+def read_numbers(text: str) -> Array:
+    """Plain decimal numbers, one a line; NaN for anything else, such as an empty cell, a word or a decimal comma."""
+    cells = text.split("\n")
+    if set(text) <= NUMBER_CHARACTERS:
         try:
-            figures = np.array(cells, dtype=np.str_).astype(float)
+            figures = np.array(list(map(float, cells)))
         except ValueError:
             pass
         else:
@@ -69,8 +70,9 @@ def _number(cell: str) -> float:
     return figure if math.isfinite(figure) else math.nan
 
 
-def read_moments(cells: list[str]) -> Array:
-    """Dates and times without a zone, in s since 1970-01-01; NaN for anything else."""
+def read_moments(text: str) -> Array:
+    """Dates and times without a zone, one a line, in s since 1970-01-01; NaN for anything else."""
+    cells = text.split("\n")
     if all(map(DATE_TIME.fullmatch, cells)):
         try:
             return np.array(cells, dtype="datetime64[s]").astype(float)

@@ -208,7 +208,6 @@ class _Survey:
         figures, told_parts = self.figures(found, parts, chosen)
         anchored = found.data.anchored(found.data.values)
         unsure = self.row_uncertainty(found, parts, chosen)
-        gap = self.survey.rules.gap
         model = found.model
         return SurveyOutcome(
             file=self.survey.file,
@@ -226,11 +225,7 @@ class _Survey:
             last=moment_text(float(kept.times[-1]), self.survey),
             rules=tuple(sieve.rules),
             cycles=self.cycle_rows(kept, found, parts, chosen),
-            gaps=tuple(
-                Gap(moment_text(float(begins), self.survey), float(length))
-                for begins, length in zip(kept.times[:-1], np.diff(kept.times), strict=True)
-                if gap is not None and length > gap.value
-            ),
+            gaps=self.gaps(kept),
             model=model.card.id,
             model_title=model.card.title,
             relation=model.relation,
@@ -247,17 +242,28 @@ class _Survey:
             plot=self.plot(kept, fitted, found, anchored),
         )
 
+    def gaps(self, kept: _Kept) -> tuple[Gap, ...]:
+        """Times between kept rows that are longer than the rule tells."""
+        limit = self.survey.rules.gap
+        if limit is None:
+            return ()
+        lengths = np.diff(kept.times)
+        places = np.flatnonzero(lengths > limit.value)
+        return tuple(
+            Gap(moment_text(float(kept.times[place]), self.survey), float(lengths[place])) for place in places
+        )
+
     def figures(
         self, found: Fit, parts: list[Part], chosen: Array
     ) -> tuple[tuple[FittedFigure, ...], tuple[SystematicPart, ...]]:
         """The parameters and the resistance at the proposal's time, with what each part moves them by."""
         count = len(found.parameters)
-        errors = np.stack([part.errors for part in parts], axis=1) if parts else np.zeros((len(chosen), 0))
+        errors = np.array([part.errors for part in parts]).reshape(len(parts), len(chosen))
         moved = found.moved_by(errors, chosen)
         at = np.array([self.survey.proposal.after.value])
         value, gradient = found.model.value_and_slopes(found.parameters, at)
         rows = [(found.parameters[number], np.eye(count)[number]) for number in range(count)]
-        rows.append((value[0], gradient[0]))
+        rows.append((value[0], gradient[:, 0]))
         names = [f"fitted {symbol}" for symbol in found.model.symbols] + [ALLOWANCE]
         symbols = [*found.model.symbols, "R_f"]
         titles = [need.quantity.meaning for need in found.model.parameters]
@@ -345,7 +351,7 @@ class _Survey:
         width = max(last - first, 1.0) / PLOT_COLUMNS
         column = np.minimum(((times - first) / width).astype(int), PLOT_COLUMNS - 1)
         curve = found.model.value(found.parameters, found.data.times)
-        shift = found.data.zero_means(found.model.value(found.parameters, found.data.times))
+        shift = found.data.zero_means(curve)
         shown = anchored + shift[found.data.cycles]
         counts = np.bincount(column, minlength=PLOT_COLUMNS)
         with np.errstate(invalid="ignore"):
