@@ -1,0 +1,117 @@
+"""Bounds: they cover the truth of histories whose errors are drawn from what is stated, and not by being wide."""
+
+from __future__ import annotations
+
+import numpy as np
+import pytest
+from history import STATED, Truth, drawn, history
+from survey_calculations import true_figures, with_rows
+
+from calcbook.chain.outcome import Solved
+from calcbook.chain.survey_outcome import SurveyOutcome
+from calcbook.library.cards import Accuracy
+from calcbook.survey.bounds import accuracy_standard
+from calcbook.survey.resistance import resistances, slopes
+
+SEEDS = 100
+
+
+def surveyed(solved: Solved, truth: Truth, seed: int, noise: float = 1.0) -> SurveyOutcome:
+    outcome = with_rows(solved, history(truth, seed, noise=noise)).survey
+    assert outcome is not None
+    return outcome
+
+
+def test_the_parameters_of_a_history_without_errors_come_back(solved: Solved) -> None:
+    truth = Truth(errors={"loss": STATED["loss"]})
+    outcome = surveyed(solved, truth, 0, noise=0.0)
+    for name, figure in true_figures(truth).items():
+        # Left between the two programs: 0.07 % of the water's conductivity; the wall temperature of the fouled
+        # and of the clean unit in the film's wall factor (E5 takes the clean one); cells of two decimals.
+        assert outcome.figure(name).value == pytest.approx(figure, rel=3e-3)
+
+
+def test_95_per_cent_bounds_cover_the_truth_in_at_least_90_of_100_histories(solved: Solved) -> None:
+    covered: dict[str, int] = {}
+    widths: dict[str, list[float]] = {}
+    for seed in range(SEEDS):
+        truth = Truth(errors=drawn(seed))
+        outcome = surveyed(solved, truth, seed)
+        for name, figure in true_figures(truth).items():
+            one = outcome.figure(name)
+            covered[name] = covered.get(name, 0) + (one.lower <= figure <= one.upper)
+            widths.setdefault(name, []).append((one.upper - one.lower) / 2 / figure)
+    assert min(covered.values()) >= 90, covered
+    # Bounds that say something: within a tenth of the figure, and not all of them met by all.
+    assert max(max(found) for found in widths.values()) < 0.1
+    assert min(covered.values()) < SEEDS
+
+
+def test_the_scatter_alone_would_not_cover(solved: Solved) -> None:
+    """Most of the bounds is systematic here: a record with the scatter alone would promise too much."""
+    inside = 0
+    for seed in range(30):
+        truth = Truth(errors=drawn(seed))
+        one = surveyed(solved, truth, seed).figure("allowance_fitted")
+        inside += abs(one.value - true_figures(truth)["allowance_fitted"]) <= 1.96 * one.scatter
+    assert inside < 20
+
+
+def test_the_proposal_is_the_percentile_of_the_fit(solved: Solved) -> None:
+    results = solved.base.results
+    fitted, upper = results["allowance_fitted"].value, results["allowance_upper"].value
+    # Standard normal quantiles at 90 % and 97.5 %: 1.281552 and 1.959964 (any table of the distribution).
+    part = (results["allowance_proposed"].value - fitted) / (upper - fitted)
+    assert part == pytest.approx(1.281552 / 1.959964, rel=1e-6)
+
+
+def columns_of(shown: dict) -> dict[str, np.ndarray]:
+    return {
+        name: figures + 273.15 if name[0] == "T" else figures
+        for name, figures in shown.items()
+        if name != "t"
+    }
+
+
+def test_slopes_of_the_rows_are_those_of_small_steps(solved: Solved) -> None:
+    chain = solved.chain
+    columns = columns_of(history(Truth(), 3, rows=40, noise=0.0))
+    found = slopes(chain, columns, 0.01)
+    for symbol in columns:
+        step = 1e-3 if symbol[0] == "T" else 1e-4
+        up, down = (
+            resistances(chain, {**columns, symbol: columns[symbol] + sign * step}, 0.01).resistance
+            for sign in (1, -1)
+        )
+        # Central differences of a figure of 1e-4 known to about 1e-15: 1e-8 of the slope, and the curvature.
+        assert found[f"given/{symbol}"] == pytest.approx((up - down) / (2 * step), rel=1e-5, abs=1e-12)
+    up, down = (resistances(chain, columns, 0.01 + sign * 1e-5).resistance for sign in (1, -1))
+    assert found["heat loss"] == pytest.approx((up - down) / 2e-5, rel=1e-6)
+
+
+def test_a_film_that_is_better_than_its_method_looks_like_less_fouling(solved: Solved) -> None:
+    plain = columns_of(history(Truth(), 3, rows=40, noise=0.0))
+    better = columns_of(history(Truth(errors={"tube film": 0.01}), 3, rows=40, noise=0.0))
+    seen = (
+        resistances(solved.chain, better, 0.0).resistance - resistances(solved.chain, plain, 0.0).resistance
+    )
+    foretold = -0.01 * slopes(solved.chain, plain, 0.0)["method gnielinski-1976"]
+    # One per cent is no small step (1 % of the effect), and the rows' temperatures move with the film.
+    assert seen == pytest.approx(foretold, rel=0.05)
+
+
+def stated(within: str, coverage: str) -> tuple[float, str] | None:
+    return accuracy_standard(Accuracy(within, coverage, "test", "published"))
+
+
+def test_the_accuracy_of_a_method_is_read_as_its_card_says_it() -> None:
+    # Quantiles of the normal distribution: 1.644854 at 95 %, 1.959964 at 97.5 %; sqrt(pi/2) = 1.253314.
+    for within, coverage, expected in (
+        ("20 %", "90 % of about 800 measured points", 0.20 / 1.644854),
+        ("25 %", "most data", 0.25 / 1.959964),
+        ("17 % mean", "30 fluids", 0.17 * 1.253314),
+    ):
+        found = stated(within, coverage)
+        assert found is not None
+        assert found[0] == pytest.approx(expected, rel=1e-6)
+    assert stated("a few per cent", "most data") is None

@@ -1,0 +1,186 @@
+"""Rows: every row of a spoiled history is kept or rejected by a named rule, whatever a plant does to it."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import numpy as np
+import pytest
+from history import DAY, Truth, cells, drawn, history, spoiled
+from survey_calculations import SURVEY, solved_survey
+
+from calcbook.chain.outcome import Solved
+from calcbook.chain.survey_outcome import SurveyOutcome
+from calcbook.survey.rows import read_moments, read_numbers
+
+TRUTH = Truth(errors=drawn(7))
+SPOILED_SURVEY = SURVEY.replace("steady state: 8 K", "steady state: 4.5 K")
+
+
+def outcome_of(folder: Path, rows: list[list[str]], survey: str = SPOILED_SURVEY) -> SurveyOutcome:
+    outcome = solved_survey(folder, rows, survey).survey
+    assert outcome is not None
+    return outcome
+
+
+def counts(outcome: SurveyOutcome) -> dict[str, int]:
+    return {rule.id: rule.count for rule in outcome.rules if rule.count}
+
+
+def adds_up(outcome: SurveyOutcome) -> bool:
+    rejected = sum(rule.count for rule in outcome.rules)
+    kept = outcome.fitted + outcome.before_cleaning + outcome.not_anchored
+    return outcome.rows == rejected + outcome.kept and outcome.kept == kept
+
+
+@pytest.fixture(scope="module")
+def whole() -> list[list[str]]:
+    return cells(history(TRUTH, 7, rows=412, days=411.0))
+
+
+def test_every_spoiled_row_is_rejected_by_its_rule(tmp_path: Path, whole: list[list[str]]) -> None:
+    outcome = outcome_of(tmp_path, spoiled([list(row) for row in whole]))
+    found = counts(outcome)
+    # As `spoiled` spoils them: four words and an empty cell, two stamps, two swapped pairs, two dead sensors.
+    assert found["unreadable"] == 5
+    assert found["duplicate time stamp"] == 2
+    assert found["temperature cross"] == 2
+    assert found["sensor range / T_ci"] == 1
+    assert found["sensor range / m_cold"] == 1
+    assert found["heat balance closure"] == 2
+    # The two jumps of 6 K and the rows after them; the last jump is one of load, as the inlet wanders.
+    assert found["steady state"] >= 4
+    assert adds_up(outcome)
+    assert [(gap.begins, round(gap.length / DAY)) for gap in outcome.gaps] == [("2025-06-11 06:00", 15)]
+
+
+def test_the_rule_names_the_first_row_it_rejects(tmp_path: Path, whole: list[list[str]]) -> None:
+    rows = [list(row) for row in whole]
+    rows[40][3] = "n/a"
+    rows[20][3] = ""
+    outcome = outcome_of(tmp_path, rows)
+    assert next(rule.first for rule in outcome.rules if rule.id == "unreadable") == "row 21"
+
+
+@pytest.mark.parametrize("seed", range(6))
+def test_no_row_is_dropped_in_silence(tmp_path: Path, whole: list[list[str]], seed: int) -> None:
+    draw = np.random.default_rng(seed)
+    rows = [list(row) for row in whole]
+    words = ["", "Bad", "NaN", "inf", "1e999", "12,5", "-273.5", "1_000", "0", "--", "74 degC", "٣٤"]
+    for _ in range(60):
+        rows[draw.integers(len(rows))][draw.integers(7)] = words[draw.integers(len(words))]
+    for _ in range(10):
+        rows[draw.integers(len(rows))].append("one cell more")
+    draw.shuffle(rows)
+    outcome = outcome_of(tmp_path, rows)
+    assert outcome.rows == len(rows)
+    assert adds_up(outcome)
+
+
+def test_the_order_of_the_rows_moves_nothing(tmp_path: Path, whole: list[list[str]]) -> None:
+    straight = outcome_of(tmp_path, whole)
+    turned = outcome_of(tmp_path, whole[::-1])
+    assert turned.out_of_order == len(whole) - 1
+    assert [one.value for one in turned.figures] == [one.value for one in straight.figures]
+
+
+def test_negative_resistances_are_kept_and_counted(solved: Solved) -> None:
+    outcome = solved.survey
+    assert outcome is not None
+    # The rows that anchor zero lie about it: some of them below.
+    assert 0 < outcome.negative < outcome.not_resolved < outcome.fitted
+
+
+def test_rows_before_the_first_cleaning_are_kept_and_not_fitted(
+    tmp_path: Path, whole: list[list[str]]
+) -> None:
+    later = SPOILED_SURVEY.replace("    - {at: 2025-02-03 06:00, source: test}\n", "")
+    outcome = outcome_of(tmp_path, whole, later)
+    assert outcome.before_cleaning == outcome.kept - outcome.fitted > 100
+    assert adds_up(outcome)
+
+
+def test_a_cleaning_without_rows_for_its_zero_is_told(tmp_path: Path, whole: list[list[str]]) -> None:
+    more = SPOILED_SURVEY.replace("  zero:", "    - {at: 2026-01-10, source: test}\n  zero:")
+    stamps = ("2026-01-1", "2026-01-2")
+    outcome = outcome_of(tmp_path, [row for row in whole if not row[0].startswith(stamps)], more)
+    assert outcome.cycles[2].zero_rows == 0
+    assert outcome.not_anchored == outcome.cycles[2].rows > 0
+    assert adds_up(outcome)
+
+
+def test_zero_on_so_many_rows_is_zero_on_these_rows(tmp_path: Path, whole: list[list[str]]) -> None:
+    by_rows = outcome_of(tmp_path, whole, SPOILED_SURVEY.replace("over: 10 days", "rows: 6"))
+    assert [one.zero_rows for one in by_rows.cycles] == [6, 6]
+
+
+def test_a_rule_without_a_limit_says_that_it_is_not_applied(tmp_path: Path, whole: list[list[str]]) -> None:
+    bare = "".join(line + "\n" for line in SPOILED_SURVEY.splitlines() if not line.startswith("  rules:"))
+    outcome = outcome_of(tmp_path, whole, bare)
+    limits = {rule.id: rule.limit for rule in outcome.rules}
+    assert limits["steady state"] == limits["heat balance closure"] == "not applied: no limit is stated"
+
+
+def test_a_time_in_hours_gives_what_dates_give(tmp_path: Path, whole: list[list[str]]) -> None:
+    by_date = outcome_of(tmp_path, whole)
+    hours = [[f"{24 * number}", *row[1:]] for number, row in enumerate(whole)]
+    survey = SPOILED_SURVEY.replace("{column: time}", "{column: time, unit: h}")
+    survey = survey.replace("at: 2025-02-03 06:00", "at: 0 h").replace("at: 2025-08-27 06:00", "at: 205 days")
+    by_hour = outcome_of(tmp_path, hours, survey)
+    assert [one.value for one in by_hour.figures] == pytest.approx(
+        [one.value for one in by_date.figures], rel=1e-9
+    )
+    assert by_hour.first == "0 h"
+
+
+def test_units_of_a_column_change_its_text_and_nothing_else(tmp_path: Path, whole: list[list[str]]) -> None:
+    mixed = outcome_of(tmp_path, whole)
+    shown = history(TRUTH, 7, rows=412, days=411.0)
+    rows = [list(row) for row in whole]
+    for number, row in enumerate(rows):
+        row[3], row[4] = (f"{shown[name][number] + 273.15:.12f}" for name in ("T_ci", "T_co"))
+        row[6] = f"{shown['m_cold'][number] * 3600:.9f}"
+    survey = SPOILED_SURVEY.replace("TI-1053, unit: degF, range: 32 degF .. 122 degF", "TI-1053, unit: K")
+    survey = survey.replace("TI-1054, unit: degF, range: 32 degF .. 176 degF", "TI-1054, unit: K")
+    survey = survey.replace("unit: t/h, range: 7 t/h .. 110 t/h", "unit: kg/h")
+    plain = outcome_of(tmp_path, rows, survey)
+    # The mixed texts have two decimals in degF and t/h: 0.003 K and 0.01 % in a row, less in the fit.
+    assert [one.value for one in plain.figures] == pytest.approx(
+        [one.value for one in mixed.figures], rel=2e-3
+    )
+
+
+@pytest.mark.parametrize(
+    ("cell", "figure"),
+    [
+        ("74.5", 74.5),
+        ("-1.5e2", -150.0),
+        (".5", 0.5),
+        ("+3", 3.0),
+        ("1_0", None),
+        ("12,5", None),
+        ("nan", None),
+    ],
+)
+def test_a_cell_is_a_plain_number_or_nothing(cell: str, figure: float | None) -> None:
+    for text in (cell, f"{cell}\nBad"):
+        found = read_numbers(text)[0]
+        assert np.isnan(found) if figure is None else found == figure
+
+
+@pytest.mark.parametrize(
+    ("cell", "seconds"),
+    [
+        ("1970-01-02", 86400.0),
+        ("1970-01-01 00:01", 60.0),
+        ("1970-01-01T00:00:01", 1.0),
+        ("1970-01-01T00:00Z", None),
+        ("1970-01-01 00:00+01:00", None),
+        ("1970-02-30", None),
+        ("01/02/1970", None),
+    ],
+)
+def test_a_stamp_is_a_date_without_a_zone_or_nothing(cell: str, seconds: float | None) -> None:
+    for text in (cell, f"{cell}\nBad"):
+        found = read_moments(text)[0]
+        assert np.isnan(found) if seconds is None else found == seconds
