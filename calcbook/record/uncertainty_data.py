@@ -32,10 +32,10 @@ def displayed_uncertainty(found: Uncertainty) -> Iterator[tuple[str, list[str]]]
     if found.sampling is None:
         return
     for one in found.sampling.results:
-        yield f"samples {one.result} / standard", [f"{one.standard:.2g}", one.kind.unit]
-        yield f"samples {one.result} / first order", [_verdict(one), ""]
+        yield f"uncertainty samples {one.result} / standard", [f"{one.standard:.2g}", one.kind.unit]
+        yield f"uncertainty samples {one.result} / first order", [_verdict(one), ""]
     for chance in found.sampling.chances:
-        yield f"samples {chance.id}", [f"{chance.probability:.4f}", "1"]
+        yield f"uncertainty samples {chance.id}", [f"{chance.probability:.4f}", "1"]
 
 
 def _budget(budget: Budget) -> Data:

@@ -120,7 +120,7 @@ def _group(name: str) -> str:
     elif kind in ("step", "check"):
         group = f"{kind} {owner.partition('/')[0].strip()}"
     else:
-        group = "criteria"
+        group = "criteria" if kind == "criterion" else kind
     return f"{case} / {group}" if bar else group
 
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import sys
 from pathlib import Path
 from statistics import NormalDist
 
@@ -436,3 +437,24 @@ def test_the_example_whose_decision_the_uncertainty_changes() -> None:
     assert max(rows, key=lambda name: rows[name] if not math.isnan(rows[name]) else 0.0) == "T_ho"
     assert rows["h_o"] < 0.05
     assert "area_margin >= 0: 85." in record_text(found)
+
+
+def test_the_cooler_against_the_same_sampling_by_hand() -> None:
+    """The sampling of the benchmark written out in numpy, with other random numbers and 200 000 samples of each.
+
+    Ends of an interval: sqrt(0.025·0.975/N)/density is 2.67 standard uncertainties over sqrt(N), on both sides.
+    """
+    sys.path.insert(0, str(Path(__file__).resolve().parent.parent / "benchmarks"))
+    import monte_carlo
+
+    count = 200_000
+    chain, solutions, drawn, result = monte_carlo.cooler()
+    hand = monte_carlo.by_hand(chain.case_inputs(""), count)
+    model = ChainModel(chain, solutions, [result])
+    found = propagate(model, drawn, 0.95, 2, most_trials=count)
+    assert found is not None and found.answered == count
+    y = found.intervals["U_service"]
+    allowed = 3.0 * math.sqrt(2.0) * y.standard / math.sqrt(count)
+    assert y.mean == pytest.approx(hand[0], abs=allowed)
+    assert y.standard == pytest.approx(hand[1], abs=allowed)
+    assert (y.low, y.high) == pytest.approx(hand[2:], abs=2.67 * allowed)
