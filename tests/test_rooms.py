@@ -61,7 +61,17 @@ OWNERS = {
     "markdown_it": {"record"},
     "scipy": {"formulas", "chain", "survey", "uncertainty"},
     "numpy": {
-        *("formulas", "properties", "library", "chain", "rating", "survey", "uncertainty", "record", "revisions"),
+        *(
+            "formulas",
+            "properties",
+            "library",
+            "chain",
+            "rating",
+            "survey",
+            "uncertainty",
+            "record",
+            "revisions",
+        ),
     },
 }
 # A run never asks the machine about itself: same input, same bytes. Sign-off dates are compared with today

@@ -7,8 +7,8 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 
 from calcbook.calcfile.links import Link
-from calcbook.calcfile.uncertainty import UncertaintyText
 from calcbook.calcfile.survey import Survey
+from calcbook.calcfile.uncertainty import UncertaintyText
 from calcbook.faults import Place
 from calcbook.formulas import Relation
 from calcbook.quantities import Quantity

@@ -15,8 +15,8 @@ from calcbook.chain.outcome import CaseOutcome, Solved, StepRow
 from calcbook.record.growth_figures import growth_figures
 from calcbook.record.numbers import in_report_unit, report_unit, unit_text, value_text
 from calcbook.record.rating_figures import rating_figures
-from calcbook.record.uncertainty_data import displayed_uncertainty
 from calcbook.record.survey import survey_texts
+from calcbook.record.uncertainty_data import displayed_uncertainty
 
 MARK = b"calcbook-digest-1\0"
 RESULT_DIGITS = 5

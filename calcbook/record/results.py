@@ -16,8 +16,8 @@ from calcbook.record.growth_figures import growth_figures
 from calcbook.record.rating_figures import rating_figures
 from calcbook.record.software import Software
 from calcbook.record.steps import StepTexts
-from calcbook.record.uncertainty_data import uncertainty_data
 from calcbook.record.survey import survey_data
+from calcbook.record.uncertainty_data import uncertainty_data
 
 
 def results_text(solved: Solved, digest: Digest, software: Software) -> str:
