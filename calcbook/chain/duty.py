@@ -379,6 +379,13 @@ class DutyLayout:
             "installed area over required area",
             "ratio",
         )
+        self._check(
+            "area / margin",
+            "M_A >= 0",
+            "range",
+            "the installed area carries the duty",
+            {"M_A": self.results["area margin"]},
+        )
         self.results["U required"] = self._step(
             "U required",
             "U_req",
