@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from dataclasses import replace
 from functools import cache, partial
 from pathlib import Path
 from typing import Any
@@ -16,6 +17,8 @@ from calcbook.faults import Collector, Fault, Faults, Place
 from calcbook.library import Library
 from calcbook.links import ISSUED, Links, Source
 from calcbook.rating.rate import rated
+from calcbook.uncertainty.flips import distances_to_flip
+from calcbook.uncertainty.sweep import axes_of, sweep_of
 
 HOUSE_CARDS = "cards"
 
@@ -126,13 +129,19 @@ def source_of(solved: Solved) -> Source:
 
 def _solved(calculation: Calculation, library: Library, collector: Collector) -> Solved | None:
     chain = build(calculation, library, collector)
-    if chain is not None and library.house is not None:
+    if chain is None:
+        return None
+    if library.house is not None:
         check_house_cards(chain, collector)
-    solved = analyse(chain, collector) if chain is not None else None
-    if solved is None:
+    axes = axes_of(chain, collector)
+    solved = analyse(chain, collector)
+    if solved is None or collector:
         return None
     solved = _surveyed(_followed(rated(solved)), collector)
-    return _assessed(solved, collector) if solved is not None else None
+    if solved is None:
+        return None
+    solved = _assessed(replace(solved, sweep=sweep_of(solved, axes, collector)), collector)
+    return replace(solved, flips=distances_to_flip(solved)) if not collector else None
 
 
 def _followed(solved: Solved) -> Solved:

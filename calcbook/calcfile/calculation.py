@@ -288,6 +288,28 @@ class Report:
 
 
 @dataclass(frozen=True, slots=True)
+class Swept:
+    """A given with the first and the last of the evenly spaced figures that it takes."""
+
+    symbol: str
+    first: Quantity
+    last: Quantity
+    steps: int
+    first_place: Place
+    last_place: Place
+    place: Place
+
+
+@dataclass(frozen=True, slots=True)
+class SweepText:
+    """A sweep over one or two givens; ``of`` are the names of the results wanted, each with its place."""
+
+    swept: tuple[Swept, ...]
+    of: tuple[tuple[str, Place], ...]
+    place: Place
+
+
+@dataclass(frozen=True, slots=True)
 class Settings:
     """What book.yaml says; the defaults hold where there is no book."""
 
@@ -371,3 +393,4 @@ class Calculation:
     time_in_service: TimeInService | None = None
     cleaning: Cleaning | None = None
     survey: Survey | None = None
+    sweep: SweepText | None = None

@@ -538,6 +538,27 @@ UNCERTAINTY = Description(
         Key("correlation", "givens whose errors go together", "list", of=CORRELATION),
     ),
 )
+SWEPT = Description(
+    "a swept given",
+    "a given and the figures that it takes, evenly spaced",
+    (
+        Key("from", "first figure", "name", required=True, example="0 m^2 K/W"),
+        Key("to", "last figure", "name", required=True),
+        Key("steps", "how many figures, both ends counted", "name", required=True, example="13"),
+    ),
+)
+SWEEP = Description(
+    "a sweep",
+    "one or two givens varied over a range",
+    (
+        Key(
+            "of",
+            "names of the results shown; absent: U in service, U clean and those of the acceptance",
+            "list",
+        ),
+    ),
+    free=Key("<symbol>", "symbol of a given", "mapping", of=SWEPT),
+)
 FILE = Description(
     "the calculation file",
     "one calculation",
@@ -603,7 +624,7 @@ FILE = Description(
             of=TIME_IN_SERVICE,
         ),
         Key("cleaning", "what one cleaning takes and costs, for the interval", "mapping", of=CLEANING),
-        Key("sweep", "sweep over givens", "node", later=True),
+        Key("sweep", "sweep over one or two givens", "mapping", of=SWEEP),
         Key(
             "evaluate at",
             "named places along the unit, each with the givens that differ there",

@@ -38,6 +38,7 @@ from calcbook.calcfile.links import LinkText, Resolve
 from calcbook.calcfile.meaning import meaning_of
 from calcbook.calcfile.specified import read_specified
 from calcbook.calcfile.survey_reading import read_survey
+from calcbook.calcfile.sweeping import read_sweep
 from calcbook.calcfile.tablefile import read_table_file
 from calcbook.calcfile.uncertainty import read_uncertainty
 from calcbook.documents import Description, Document, Fields, Node, Scalar, Sequence, read_file, read_mapping
@@ -211,6 +212,7 @@ class Reader:
             time_in_service=time_in_service,
             cleaning=cleaning,
             survey=survey,
+            sweep=read_sweep(self.fields.node("sweep"), givens, self.broken, self.quantity, self.collector),
         )
 
     def meaning(self) -> object:

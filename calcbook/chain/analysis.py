@@ -5,7 +5,7 @@ from __future__ import annotations
 import itertools
 import math
 from collections.abc import Callable, Mapping
-from dataclasses import replace
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -73,8 +73,9 @@ from calcbook.faults import Collector, nearest_names, shown
 from calcbook.library import vocabulary
 from calcbook.library.operations import run
 from calcbook.properties import SATURATION_FRACTION
-from calcbook.quantities import QuantityFault, as_kind
+from calcbook.quantities import QuantityFault, QuantityKind, as_kind
 
+Array = np.ndarray
 CONTROLLING_SHARE = 0.5
 PLACES_SPREAD = 0.2
 # Slopes below this part of U are the rounding of sums that cancel.
@@ -234,46 +235,60 @@ class _Analysis:
     def _results(
         self, solutions: Mapping[str, Solution], inputs: Mapping[str, np.ndarray]
     ) -> dict[str, Result]:
-        kinds = vocabulary()
-        results: dict[str, Result] = {}
-
-        def put(name: str, value: float, kind: str, title: str) -> None:
+        """The named results of a single record, and the largest allowances, which take solutions of their own."""
+        results = {
+            name: Result(name, value, item.kind, item.title)
+            for name, item in self.figures(solutions).items()
+            if math.isfinite(value := float(item.values))
+        }
+        for name, value in largest_allowances(self.chain, inputs, solutions[SERVICE]).items():
             if math.isfinite(value):
-                results[name] = Result(name, value, kinds[kind], title)
+                title = f"largest resistance of {name} with which the installed area carries the duty"
+                key = f"largest_allowance {name}"
+                results[key] = Result(key, value, vocabulary()["area resistance"], title)
+        return results
+
+    def figures(self, solutions: Mapping[str, Solution]) -> dict[str, ResultFigures]:
+        """Every named result at every sample."""
+        kinds = vocabulary()
+        results: dict[str, ResultFigures] = {}
+
+        def put(name: str, values: Array, kind: str, title: str) -> None:
+            results[name] = ResultFigures(values, kinds[kind], title)
 
         table = self.chain.results
         for condition, solution in reversed(list(solutions.items())):
             put(
                 f"U_{condition}",
-                solution.number(table["U"]),
+                solution.figure(table["U"]),
                 "overall coefficient",
                 f"overall coefficient, {condition}",
             )
             for surface in self.chain.surfaces:
                 put(
                     f"U_{condition} on {surface.name}",
-                    solution.number(table[f"U on {surface.name}"]),
+                    solution.figure(table[f"U on {surface.name}"]),
                     "overall coefficient",
                     f"overall coefficient on {surface.name}, {condition}",
                 )
             if "U on bare" in table:
                 put(
                     f"U_{condition} on bare",
-                    solution.number(table["U on bare"]),
+                    solution.figure(table["U on bare"]),
                     "overall coefficient",
                     f"overall coefficient on bare, {condition}",
                 )
-            put(f"UA_{condition}", solution.number(table["UA"]), "conductance", f"conductance, {condition}")
+            put(f"UA_{condition}", solution.figure(table["UA"]), "conductance", f"conductance, {condition}")
             if "heat flux" in table:
                 put(
                     f"heat_flux_{condition}",
-                    solution.number(table["heat flux"]),
+                    solution.figure(table["heat flux"]),
                     "heat flux",
                     f"heat flux, {condition}",
                 )
                 put(
                     f"heat_flow_{condition}",
-                    solution.number(table["heat flow"]),
+                    solution.figure(table["heat flow"]),
                     "heat flow",
                     f"heat flow, {condition}",
                 )
@@ -282,11 +297,11 @@ class _Analysis:
                 for condition, solution in reversed(list(solutions.items())):
                     put(
                         f"{name} {condition}",
-                        solution.number(table[name]),
+                        solution.figure(table[name]),
                         "temperature difference",
                         f"temperature change of {name.removeprefix('dT ')} that the heat flow implies, {condition}",
                     )
-        clean, service = (results[f"U_{condition}"].value for condition in CONDITIONS)
+        clean, service = (results[f"U_{condition}"].values for condition in CONDITIONS)
         put("cleanliness", service / clean, "ratio", "cleanliness, U_service/U_clean")
         put("excess_surface", clean / service - 1.0, "ratio", "excess surface, U_clean/U_service − 1")
         for condition, solution in reversed(list(solutions.items())):
@@ -296,36 +311,29 @@ class _Analysis:
                 if isinstance(element, Group):
                     put(
                         f"h {element.name} {condition}",
-                        solution.number(table[f"h {element.name}"]),
+                        solution.figure(table[f"h {element.name}"]),
                         "film coefficient",
                         f"film coefficient {element.name}, {condition}",
                     )
                 put(
                     f"R {element.name} {condition}",
-                    solution.number(table[f"R {element.name}"]),
+                    solution.figure(table[f"R {element.name}"]),
                     "area resistance",
                     f"resistance of {element.name} on the basis area, {condition}",
                 )
         duty_results(self.chain, solutions, put)
-        for name, value in largest_allowances(self.chain, inputs, solutions[SERVICE]).items():
-            put(
-                f"largest_allowance {name}",
-                value,
-                "area resistance",
-                f"largest resistance of {name} with which the installed area carries the duty",
-            )
         self._stream_results(solutions[SERVICE], put)
         for _, branch, drop in drops(self.chain):
             for condition, solution in reversed(list(solutions.items())):
                 put(
                     f"dp {branch.stream}_{condition}",
-                    solution.number(drop.total.coefficient),
+                    solution.figure(drop.total.coefficient),
                     "pressure drop",
                     f"pressure drop of {branch.stream}, {condition}",
                 )
         return results
 
-    def _stream_results(self, solution: Solution, put: Callable[[str, float, str, str], None]) -> None:
+    def _stream_results(self, solution: Solution, put: Callable[[str, Array, str, str], None]) -> None:
         for group in (self.chain.inner, self.chain.outer):
             for branch in group.branches:
                 state = self.chain.streams.get(branch.stream)
@@ -339,12 +347,12 @@ class _Analysis:
                     if step in solution.values:
                         put(
                             f"{name} {branch.stream}",
-                            solution.number(step),
+                            solution.figure(step),
                             kind,
                             f"{kind} of {branch.stream}",
                         )
 
-    def _interfaces(self, solution: Solution) -> list[tuple[str, float]]:
+    def _interfaces(self, solution: Solution) -> list[tuple[str, Array]]:
         """Temperatures between terms, from the inside to the outside, and of both wetted surfaces."""
         if not self.chain.has_temperatures:
             return []
@@ -356,25 +364,25 @@ class _Analysis:
             found.append((f"{before.name} to {after.name}", temperatures[index]))
         return found
 
-    def _temperatures(self, solution: Solution) -> list[float]:
+    def _temperatures(self, solution: Solution) -> list[Array]:
         """Temperature before the first element, between elements, and after the last one."""
         if not self.chain.has_temperatures:
-            return [math.nan] * (len(self.chain.elements) + 1)
-        flow = solution.number("solution/Q")
-        temperatures = [solution.number(self.chain.inner.bulk)]
+            return [np.asarray(math.nan)] * (len(self.chain.elements) + 1)
+        flow = solution.figure("solution/Q")
+        temperatures = [solution.figure(self.chain.inner.bulk)]
         for element in self.chain.elements[:-1]:
             if isinstance(element, Group):
-                temperatures.append(solution.number(element.surface_temperature))
+                temperatures.append(solution.figure(element.surface_temperature))
             elif element.second_temperature:
-                temperatures.append(solution.number(element.second_temperature))
+                temperatures.append(solution.figure(element.second_temperature))
             else:
-                area = solution.number(self.chain.surfaces[element.surface].area)
-                temperatures.append(temperatures[-1] - flow * solution.number(element.resistance) / area)
-        temperatures[-1] = solution.number(self.chain.outer.surface_temperature)
-        return [*temperatures, solution.number(self.chain.outer.bulk)]
+                area = solution.figure(self.chain.surfaces[element.surface].area)
+                temperatures.append(temperatures[-1] - flow * solution.figure(element.resistance) / area)
+        temperatures[-1] = solution.figure(self.chain.outer.surface_temperature)
+        return [*temperatures, solution.figure(self.chain.outer.bulk)]
 
     def _terms(self, solution: Solution) -> tuple[TermRow, ...]:
-        temperatures = self._temperatures(solution)
+        temperatures = [float(item) for item in self._temperatures(solution)]
         total = solution.number(self.chain.results["R total"])
         rows = []
         for index, element in enumerate(self.chain.elements):
@@ -666,11 +674,12 @@ class _Analysis:
                         nearest=nearest_names(criterion.result, results),
                     )
                 continue
-            limit = self._limit_of(criterion, result, solutions[SERVICE])
-            if limit is None:
+            stated = self.limit_of(criterion, result.kind, solutions[SERVICE])
+            if stated is None:
                 continue
-            margin = (result.value - limit) * OPPOSITE[criterion.operator]
-            met = margin >= 0.0 if "=" in criterion.operator else margin > 0.0
+            limit = float(stated)
+            margin = float(criterion_margin(criterion, result.value, limit))
+            met = bool(criterion_met(criterion, margin))
             found.append(
                 CriterionResult(
                     f"criterion {number}",
@@ -686,14 +695,15 @@ class _Analysis:
             )
         return tuple(found)
 
-    def _limit_of(self, criterion: Criterion, result: Result, solution: Solution) -> float | None:
+    def limit_of(self, criterion: Criterion, kind: QuantityKind, solution: Solution) -> Array | None:
+        """The limit of a criterion at every sample; None after a fault."""
         value = criterion.limit
         if value.symbol:
             name = next(
                 (
-                    f"{kind}/{value.symbol}"
-                    for kind in ("given", "derived")
-                    if f"{kind}/{value.symbol}" in solution.values
+                    f"{origin}/{value.symbol}"
+                    for origin in ("given", "derived")
+                    if f"{origin}/{value.symbol}" in solution.values
                 ),
                 "",
             )
@@ -708,19 +718,19 @@ class _Analysis:
                     nearest=nearest_names(value.symbol, known),
                 )
                 return None
-            if self.dimensions.get(name) != result.kind.dimension:
+            if self.dimensions.get(name) != kind.dimension:
                 self.collector.add(
                     "unit-dimension",
                     value.place,
-                    f"`{value.symbol}` is no {result.kind.name}",
+                    f"`{value.symbol}` is no {kind.name}",
                     found=value.symbol,
-                    expected=result.kind.unit,
+                    expected=kind.unit,
                 )
                 return None
-            return solution.number(name)
+            return solution.figure(name)
         assert value.quantity is not None, "a limit is a symbol or a quantity"
         try:
-            return as_kind(value.quantity, result.kind).value
+            return np.asarray(as_kind(value.quantity, kind).value)
         except QuantityFault as error:
             self.collector.add(
                 error.code,
@@ -884,7 +894,7 @@ class _Analysis:
                         "W",
                     )
                 )
-            temperatures = self._temperatures(solution)
+            temperatures = [float(item) for item in self._temperatures(solution)]
             summed = sum(before - after for before, after in itertools.pairwise(temperatures))
             whole = temperatures[0] - temperatures[-1]
             rows.append(
@@ -931,6 +941,62 @@ class _Analysis:
                 rows.append(SensitivityRow(item, "1 K" if temperature else "1 %", change, change / reference))
         order = {key: place for place, key in enumerate(self.chain.inputs)}
         return tuple(sorted(rows, key=lambda row: (-float(f"{abs(row.change):.9g}"), order[row.input.id])))
+
+
+# --- the same on many samples -----------------------------------------------------------------------
+
+
+@dataclass(frozen=True, slots=True)
+class ResultFigures:
+    """A named result at every sample, in SI; NaN where there is none."""
+
+    values: Array
+    kind: QuantityKind
+    title: str
+
+
+@dataclass(frozen=True, slots=True)
+class CriterionFigures:
+    """An acceptance criterion at every sample: its number from 1, and the margin (NaN where not known)."""
+
+    number: int
+    criterion: Criterion
+    margin: Array
+
+    @property
+    def met(self) -> Array:
+        return criterion_met(self.criterion, self.margin)
+
+
+def result_figures(chain: Chain, solutions: Mapping[str, Solution]) -> dict[str, ResultFigures]:
+    """The named results of solutions of many samples, with their pressure drops evaluated."""
+    return _Analysis(chain, Collector()).figures(solutions)
+
+
+def criterion_figures(
+    chain: Chain, solutions: Mapping[str, Solution], results: Mapping[str, ResultFigures]
+) -> list[CriterionFigures]:
+    """The acceptance criteria of a chain whose own record has shown no fault in them."""
+    analysis = _Analysis(chain, Collector())
+    found = []
+    for number, criterion in enumerate(chain.calculation.acceptance, 1):
+        result = results.get(criterion.result)
+        limit = analysis.limit_of(criterion, result.kind, solutions[SERVICE]) if result is not None else None
+        if result is not None and limit is not None:
+            found.append(
+                CriterionFigures(number, criterion, criterion_margin(criterion, result.values, limit))
+            )
+    return found
+
+
+def criterion_margin(criterion: Criterion, value: Array | float, limit: Array | float) -> Array:
+    """Value less limit, in the direction that is good."""
+    return (np.asarray(value) - limit) * OPPOSITE[criterion.operator]
+
+
+def criterion_met(criterion: Criterion, margin: Array | float) -> Array:
+    """Whether a margin meets the criterion: at the limit itself only where the operator has an equal sign."""
+    return np.asarray(margin) >= 0.0 if "=" in criterion.operator else np.asarray(margin) > 0.0
 
 
 # --- small helpers ----------------------------------------------------------------------------------

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 import math
 from collections.abc import Mapping
 from dataclasses import replace
@@ -14,6 +15,7 @@ from calcbook.chain.solve import Solution
 from calcbook.chain.types import Chain, ChainCheck
 from calcbook.faults import Collector, nearest_names, shown
 from calcbook.formulas import (
+    Binary,
     Compare,
     Node,
     Number,
@@ -25,9 +27,13 @@ from calcbook.formulas import (
     parse_number,
     write,
 )
-from calcbook.formulas.nodes import CONSTANTS
+from calcbook.formulas.nodes import CONSTANTS, walk
 from calcbook.quantities import DIMENSIONLESS, QuantityFault, read_any, si_unit, unit_display
 
+Array = np.ndarray
+# What a limit can be at a sample; arrays of states hold the place in this list.
+STATES = ("within", "outside", "not evaluable", "not counting")
+WITHIN, OUTSIDE, NOT_EVALUABLE, NOT_COUNTING = range(len(STATES))
 OPERATORS = {">=": "≥", "<=": "≤", ">": ">", "<": "<", "==": "=", "!=": "≠"}
 
 
@@ -63,14 +69,68 @@ def evaluate_check(
 
 def state_of_check(check: ChainCheck, solution: Solution) -> str:
     """How a limit stands in one condition of a single record: within, outside, not evaluable, not counting."""
-    values = solution.values
-    if not all(_counts(one.relation, one.inputs, values) for one in check.counts_when):
-        return "not counting"
+    return STATES[int(check_states(check, solution.values).ravel()[0])]
+
+
+def check_states(check: ChainCheck, values: Mapping[str, Array]) -> Array:
+    """The state of one limit at every sample, as its place in ``STATES``; 0-d where nothing varies."""
     arguments = {symbol: values[bound] for symbol, bound in check.inputs.items()}
+    unknown: Array = np.asarray(False)
     for value in arguments.values():
-        if isinstance(value, np.ndarray) and not np.isfinite(np.asarray(value, dtype=float)).all():
-            return "not evaluable"
-    return "within" if bool(evaluate(check.limit.that, arguments)) else "outside"
+        if isinstance(value, np.ndarray):
+            unknown = unknown | ~np.isfinite(np.asarray(value, dtype=float))
+    held = np.where(evaluate(check.limit.that, arguments), WITHIN, OUTSIDE)
+    states = np.where(unknown, NOT_EVALUABLE, held)
+    for one in check.counts_when:
+        counts = evaluate(one.relation, {symbol: values[bound] for symbol, bound in one.inputs.items()})
+        states = np.where(counts, states, NOT_COUNTING)
+    return states
+
+
+def check_margins(check: ChainCheck, values: Mapping[str, Array]) -> list[Array]:
+    """The differences that pass zero where a limit changes its state: both sides of each comparison in it."""
+    found = relation_margins(check.limit.that, check.inputs, values)
+    for one in check.counts_when:
+        found += relation_margins(one.relation, one.inputs, values)
+    return found
+
+
+def relation_margins(
+    relation: Relation, inputs: Mapping[str, str], values: Mapping[str, Array]
+) -> list[Array]:
+    """Left side less right side of every comparison in a relation, at every sample."""
+    arguments = {symbol: values[bound] for symbol, bound in inputs.items()}
+    return [evaluate(difference, arguments) for difference in _differences(relation.tree)]
+
+
+def _differences(tree: Node) -> tuple[Node, ...]:
+    """The differences of a tree's comparisons; kept with the tree, so that each is compiled once."""
+    found = tree.memory.get(_differences)
+    if found is None:
+        pairs = []
+        for node in walk(tree):
+            if isinstance(node, Compare):
+                sides = [node.first, *(side for _, side in node.rest)]
+                pairs += [Binary("-", left, right) for left, right in itertools.pairwise(sides)]
+        found = tree.memory[_differences] = tuple(pairs)
+    return found
+
+
+def checked_figure(check: ChainCheck, values: Mapping[str, Array]) -> Array | None:
+    """The figure that a limit checks, at every sample; None where the limit compares nothing."""
+    tree = check.limit.that.tree
+    if not isinstance(tree, Compare):
+        return None
+    operands, place = _checked_place(tree)
+    return evaluate(operands[place], {symbol: values[bound] for symbol, bound in check.inputs.items()})
+
+
+def _checked_place(tree: Compare) -> tuple[list[Node], int]:
+    """The operands of a comparison, and which of them is the figure that is checked."""
+    operands = [tree.first, *(operand for _, operand in tree.rest)]
+    if len(operands) == 3:
+        return operands, 1
+    return operands, 0 if not _is_fixed(operands[0]) or len(operands) == 1 else 1
 
 
 def _in_words(check: ChainCheck, figure: str, limit: str, value: float) -> tuple[str, str]:
@@ -87,18 +147,13 @@ def _in_words(check: ChainCheck, figure: str, limit: str, value: float) -> tuple
     return f"{write(tree.first)} = {words[int(value)]}", f"{OPERATORS[operator]} {write(wanted)}"
 
 
-def _counts(relation: Relation, inputs: Mapping[str, str], values: Mapping[str, np.ndarray]) -> bool:
-    return bool(evaluate(relation, {symbol: values[bound] for symbol, bound in inputs.items()}))
-
-
 def _figure_and_limit(
     tree: Node, arguments: Mapping[str, np.ndarray], dims: Mapping[str, tuple], unknown: bool
 ) -> tuple[str, str, float, str]:
     """The checked figure and its limit as text, from the comparison itself."""
     if not isinstance(tree, Compare):
         return write(tree), "", math.nan, ""
-    operands = [tree.first, *(operand for _, operand in tree.rest)]
-    place = 1 if len(operands) == 3 else (0 if not _is_fixed(operands[0]) or len(operands) == 1 else 1)
+    operands, place = _checked_place(tree)
     checked = operands[place]
     unit = unit_display(si_unit(dimension(checked, dims)))
     name = write(checked)
@@ -213,13 +268,15 @@ def _accepted(chain: Chain, result: CheckResult, collector: Collector) -> CheckR
             return replace(result, accepted=f"accepted though within: {words}")
         if result.level == "stop" or result.state not in ("outside", "not evaluable"):
             return result
-        inside = math.isnan(result.value) or (
-            result.value >= bound if acceptance.direction == "down to" else result.value <= bound
-        )
-        if inside:
+        if bool(within_bound(acceptance.direction, bound, np.asarray(result.value))):
             return replace(result, state="accepted", accepted=words)
         return replace(result, accepted=f"beyond the accepted bound: {words}")
     return result
+
+
+def within_bound(direction: str, bound: float, figures: Array) -> Array:
+    """Whether checked figures stay within the bound of an acceptance; one that is not known does."""
+    return np.isnan(figures) | (figures >= bound if direction == "down to" else figures <= bound)
 
 
 def _bound(acceptance: Acceptance, result: CheckResult, collector: Collector) -> float | None:

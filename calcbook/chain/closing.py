@@ -22,6 +22,8 @@ if TYPE_CHECKING:
 
 Array = np.ndarray
 MAXIMUM_PASSES = 60
+# Most circuits close in six to ten.
+FEW_PASSES = 10
 # The step that remains, judged from the last two, relative to the unknowns.
 STEP_TOLERANCE = 1e-15
 # A step so small settles by itself: rounding in the laws hides smaller ones, and the more so the smaller a
@@ -36,7 +38,7 @@ LARGEST_RISE = 2.0
 ROUNDING = 1e-12
 
 
-def close(engine: Engine) -> None:
+def close(engine: Engine, passes: int = MAXIMUM_PASSES) -> None:
     """Find heat flow and drops of every sample; writes ``flow``, ``drops`` and ``converged``."""
     if not engine.moving:
         engine.flow = engine.difference / engine.still
@@ -48,7 +50,7 @@ def close(engine: Engine) -> None:
     engine.converged = idle.copy()
     if len(samples):
         flow, drops = start(engine, samples)
-        engine.converged[samples] = newton(engine, samples, flow, drops)
+        engine.converged[samples] = newton(engine, samples, flow, drops, passes)
 
 
 def start(engine: Engine, samples: Array) -> tuple[Array, Array]:
@@ -104,9 +106,9 @@ class _Slopes:
         self.flow[:, places] = other.flow
 
 
-def newton(engine: Engine, samples: Array, flow: Array, drops: Array) -> Array:
+def newton(engine: Engine, samples: Array, flow: Array, drops: Array, passes: int = MAXIMUM_PASSES) -> Array:
     """Passes from a start to the answer; writes flow and drops of the samples, returns which settled."""
-    return _Passes(engine, samples, flow, drops).settled()
+    return _Passes(engine, samples, flow, drops).settled(passes)
 
 
 class _Passes:
@@ -130,9 +132,9 @@ class _Passes:
             low, high = temperature_range(engine, samples)
             self.span = high - low
 
-    def settled(self) -> Array:
+    def settled(self, passes: int) -> Array:
         active = np.arange(len(self.samples))
-        for _ in range(MAXIMUM_PASSES):
+        for _ in range(passes):
             if not len(active):
                 break
             self._pass(active)

@@ -9,6 +9,8 @@ from __future__ import annotations
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 
+import numpy as np
+
 from calcbook.calcfile.calculation import Duty, DutySide, Term
 from calcbook.chain.films import FilmScope
 from calcbook.chain.scope import Scope
@@ -29,6 +31,7 @@ from calcbook.formulas import parse_expression
 from calcbook.library import Library, vocabulary
 from calcbook.library.cards import Limit, Need
 
+Array = np.ndarray
 OWNER, AGAIN = "duty", "duty again"
 SIDES = ("hot", "cold")
 # Balances of plant data close within these parts of the duty; beyond the first the flows or temperatures are
@@ -669,15 +672,15 @@ DUTY_RESULTS = {
 
 
 def duty_results(
-    chain: Chain, solutions: Mapping[str, Solution], put: Callable[[str, float, str, str], None]
+    chain: Chain, solutions: Mapping[str, Solution], put: Callable[[str, Array, str, str], None]
 ) -> None:
-    """Hand every result of the duty to ``put``: name, value, kind, title."""
+    """Hand every result of the duty to ``put``: name, value at every sample, kind, title."""
     if chain.calculation.duty is None:
         return
     for condition, table in ((SERVICE, _RESULTS), (CLEAN, _CLEAN_RESULTS)):
         for name, key, kind, title in table:
             if key in chain.results:
-                put(name, solutions[condition].number(chain.results[key]), kind, title)
+                put(name, solutions[condition].figure(chain.results[key]), kind, title)
 
 
 def duty_step(chain: Chain, name: str) -> tuple[str, str] | None:

@@ -4,11 +4,12 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator, Mapping
+from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
 
-from calcbook.chain.checks import apart
+from calcbook.chain.checks import NOT_EVALUABLE, OUTSIDE, STATES, WITHIN, apart
 from calcbook.chain.gaps import gaps
 from calcbook.chain.outcome import CheckResult
 from calcbook.chain.roots import other_heat_flows
@@ -29,7 +30,10 @@ from calcbook.formulas import number_text
 from calcbook.library.operations import run
 from calcbook.properties import FluidAtPressure, PropertyFault
 
+Array = np.ndarray
 ICE_POINT = 273.15
+# Stands for a figure that a state does not have: none that it has is negative.
+UNKNOWN = -1.0
 # A pure fluid's two sides of saturation meet within rounding; a blend's dew point lies above by more than this, K.
 GLIDE = 1e-3
 
@@ -59,7 +63,7 @@ def stream_findings(
         run(
             [
                 step
-                for step in _all_steps(chain)
+                for step in film_steps(chain)
                 if step.id in (state.temperature, state.pressure, state.fraction) and step.id not in values
             ],
             values,
@@ -146,7 +150,8 @@ def _check_directions(chain: Chain, values: Mapping[str, Any], collector: Collec
             )
 
 
-def _all_steps(chain: Chain) -> Iterator[ChainStep]:
+def film_steps(chain: Chain) -> Iterator[ChainStep]:
+    """The shared steps of a chain, then those of every film, in order."""
     yield from chain.steps
     for element in chain.elements:
         if isinstance(element, Group):
@@ -198,102 +203,239 @@ def _check_surfaces(chain: Chain, values: Mapping[str, Any], collector: Collecto
 # --- phases at the wall -----------------------------------------------------------------------------
 
 
+@dataclass(frozen=True, eq=False)
+class WallLimit:
+    """One limit of phase at a wetted surface; ``limit`` is NaN where it is not known. 0-d or by sample.
+
+    ``acts`` are the samples whose stream has the phase that this limit is for.
+    """
+
+    owner: str
+    name: str
+    that: str
+    sign: str
+    surface: Array
+    limit: Array
+    acts: Array
+    because: str
+    provider: str
+
+    @property
+    def id(self) -> str:
+        return f"{self.owner} / wall phase / {self.name}"
+
+    @property
+    def margin(self) -> Array:
+        """How far the surface is from the limit, above zero within."""
+        return self.limit - self.surface if self.sign == "<" else self.surface - self.limit
+
+    @property
+    def states(self) -> Array:
+        """The places in ``STATES``."""
+        return np.where(np.isfinite(self.limit), np.where(self.margin > 0.0, WITHIN, OUTSIDE), NOT_EVALUABLE)
+
+
 def wall_checks(chain: Chain, case: str, solution: Solution) -> list[CheckResult]:
     """Against boiling, condensing and freezing at every wetted surface of a film or gap with a fluid."""
-    results: list[CheckResult] = []
+    return [_wall_check(item, case, solution.condition) for item in wall_limits(chain, solution)]
+
+
+def _wall_check(item: WallLimit, case: str, condition: str) -> CheckResult:
+    surface, limit = float(item.surface.ravel()[0]), float(item.limit.ravel()[0])
+    state = STATES[int(item.states.ravel()[0])]
+    known = math.isfinite(limit)
+    limit_text = (
+        f"{item.sign} {apart(limit - ICE_POINT, (surface - ICE_POINT,), 4)} °C"
+        if known
+        else "not known without a pressure"
+    )
+    return CheckResult(
+        item.id,
+        item.owner,
+        "wall phase",
+        condition,
+        case,
+        item.that,
+        f"T_s = {apart(surface - ICE_POINT, ((limit if known else 0.0) - ICE_POINT,), 4)} °C",
+        limit_text,
+        surface,
+        "K",
+        "range",
+        state,
+        item.because,
+        item.provider,
+        "independent library",
+    )
+
+
+def wall_limits(chain: Chain, solution: Solution) -> list[WallLimit]:
+    """The limits of phase at every wetted surface of a film or gap with a fluid, at every sample."""
+    found: list[WallLimit] = []
     if not chain.has_temperatures:
-        return results
+        return found
     for group in (chain.inner, chain.outer):
         for branch in group.branches:
             if branch.kind == "film" and branch.stream:
-                results += _film_checks(chain, case, solution, group, branch)
+                found += _film_limits(chain, solution, group, branch)
     for layer, gap in gaps(chain):
-        sides = [solution.number(name) for name in (layer.first_temperature, layer.second_temperature)]
-        results += _phase_checks(layer.name, gap.fluid, "", sides, case, solution)
-    return results
+        sides = [solution.figure(name) for name in (layer.first_temperature, layer.second_temperature)]
+        found += _phase_limits(layer.name, gap.fluid, "", sides, solution)
+    return found
 
 
-def _film_checks(
-    chain: Chain, case: str, solution: Solution, group: Group, branch: Branch
-) -> list[CheckResult]:
-    surface = solution.number(chain.results.get(f"T root {group.name}", group.surface_temperature))
+def _film_limits(chain: Chain, solution: Solution, group: Group, branch: Branch) -> list[WallLimit]:
+    surface = solution.figure(chain.results.get(f"T root {group.name}", group.surface_temperature))
     phase_change = branch.situation.changes_phase if branch.situation is not None else ""
-    state = chain.streams[branch.stream]
-    return _phase_checks(branch.name, state, phase_change, [surface], case, solution)
+    return _phase_limits(branch.name, chain.streams[branch.stream], phase_change, [surface], solution)
 
 
-def _phase_checks(
-    owner: str, state: StreamState, phase_change: str, sides: list[float], case: str, solution: Solution
-) -> list[CheckResult]:
+def _phase_limits(
+    owner: str, state: StreamState, phase_change: str, sides: list[Array], solution: Solution
+) -> list[WallLimit]:
     """The phase of a fluid at the surfaces that it touches: at the hottest against boiling, else at the coldest."""
-    pressure = solution.number(state.pressure) if state.pressure else None
-    fraction = solution.number(state.fraction) if state.fraction else None
-    fluid = state.fluid.state(pressure, fraction, state.phase)
-    phase = state.phase or fluid.phase_at(solution.number(state.temperature))
-    hottest, coldest = max(sides), min(sides)
-    checks = []
+    phases, place = stream_phases(state, solution.values)
+    facts = [_wall_facts(state, *figures) for figures in phases]
+    hottest, coldest = np.maximum.reduce(sides), np.minimum.reduce(sides)
+    limits = []
 
-    def add(name: str, that: str, limit: float | None, inside: bool, sign: str, because: str) -> None:
-        surface = hottest if sign == "<" else coldest
-        known = limit is not None and math.isfinite(limit)
-        state_word = "not evaluable" if not known else ("within" if inside else "outside")
-        limit_text = (
-            f"{sign} {apart(limit - ICE_POINT, (surface - ICE_POINT,), 4)} °C"
-            if known and limit is not None
-            else "not known without a pressure"
-        )
-        figure = f"T_s = {apart(surface - ICE_POINT, ((limit or 0.0) - ICE_POINT,), 4)} °C"
-        checks.append(
-            CheckResult(
-                f"{owner} / wall phase / {name}",
-                owner,
-                "wall phase",
-                solution.condition,
-                case,
-                that,
-                figure,
-                limit_text,
-                surface,
-                "K",
-                "range",
-                state_word,
-                because,
-                state.fluid_name,
-                "independent library",
+    def add(name: str, that: str, end: str, sign: str, because: str, wanted: list[bool]) -> None:
+        if any(wanted):
+            figures = np.array([getattr(one, end) if one is not None else math.nan for one in facts])[place]
+            acts = np.array(wanted)[place]
+            surface = hottest if sign == "<" else coldest
+            limits.append(
+                WallLimit(owner, name, that, sign, surface, figures, acts, because, state.fluid_name)
             )
-        )
 
-    if fluid.has_vapour_pressure and not phase_change:
-        boiling = fluid.saturation_temperature()
-        if phase == "liquid":
-            add(
-                "boils",
-                "T_s < T_sat",
-                boiling,
-                boiling is not None and hottest < boiling,
-                "<",
-                "the method is for a liquid without boiling at the surface",
-            )
-        elif phase == "gas" and boiling is not None:
-            add(
-                "condenses",
-                f"T_s > {'T_dew' if state.fluid.text.kind == 'humid air' else 'T_sat'}",
-                boiling,
-                coldest > boiling,
-                ">",
-                "the method is for a gas without condensing at the surface",
-            )
-    freezing = fluid.freezing_temperature()
-    if (phase == "liquid" or phase_change) and freezing is not None:
-        add(
-            "freezes",
-            "T_s > T_freeze",
-            freezing,
-            coldest > freezing,
-            ">",
-            "the method is for a liquid that does not freeze at the surface",
+    changing = not phase_change
+    add(
+        "boils",
+        "T_s < T_sat",
+        "boiling",
+        "<",
+        "the method is for a liquid without boiling at the surface",
+        [one is not None and one.has_vapour and changing and one.phase == "liquid" for one in facts],
+    )
+    add(
+        "condenses",
+        f"T_s > {'T_dew' if state.fluid.text.kind == 'humid air' else 'T_sat'}",
+        "boiling",
+        ">",
+        "the method is for a gas without condensing at the surface",
+        [
+            one is not None
+            and one.has_vapour
+            and changing
+            and one.phase == "gas"
+            and not math.isnan(one.boiling)
+            for one in facts
+        ],
+    )
+    add(
+        "freezes",
+        "T_s > T_freeze",
+        "freezing",
+        ">",
+        "the method is for a liquid that does not freeze at the surface",
+        [
+            one is not None and (one.phase == "liquid" or bool(phase_change)) and not math.isnan(one.freezing)
+            for one in facts
+        ],
+    )
+    return limits
+
+
+@dataclass(frozen=True, slots=True)
+class _WallFacts:
+    """What a bulk state says about its wall; NaN for a temperature that is not known."""
+
+    phase: str
+    has_vapour: bool
+    boiling: float
+    freezing: float
+
+
+def _wall_facts(state: StreamState, phase: str, pressure: float, fraction: float) -> _WallFacts | None:
+    """The facts of a bulk state; None where the fluid has no such state."""
+    try:
+        fluid = state.fluid.state(known_or_none(pressure), known_or_none(fraction), state.phase)
+    except PropertyFault:
+        return None
+    boiling, freezing = fluid.saturation_temperature(), fluid.freezing_temperature()
+    return _WallFacts(
+        phase,
+        fluid.has_vapour_pressure,
+        math.nan if boiling is None else boiling,
+        math.nan if freezing is None else freezing,
+    )
+
+
+def stream_phases(
+    state: StreamState, values: Mapping[str, Array]
+) -> tuple[list[tuple[str, float, float]], Array]:
+    """The different phases of a stream with their pressure and fraction (NaN: none), and which each sample has.
+
+    Along one pressure each phase has one stretch of temperatures: two ends of one phase settle what lies between.
+    """
+    states, place = stream_states(state, values)
+    groups: dict[tuple[float, ...], list[int]] = {}
+    for number, (_, pressure, fraction) in enumerate(states):
+        groups.setdefault(tuple(np.nan_to_num([pressure, fraction], nan=UNKNOWN)), []).append(number)
+    phases = [""] * len(states)
+    for numbers in groups.values():
+        numbers.sort(key=lambda number: states[number][0])
+        ends = [_phase(state, *states[number]) for number in (numbers[0], numbers[-1])]
+        for number in numbers:
+            phases[number] = ends[0] if ends[0] == ends[1] else _phase(state, *states[number])
+    found: dict[tuple[str, float, float], int] = {}
+    renamed = []
+    for phase, (_, pressure, fraction) in zip(phases, states, strict=True):
+        key = (phase, *np.nan_to_num([pressure, fraction], nan=UNKNOWN).tolist())
+        renamed.append(found.setdefault(key, len(found)))
+    known = [
+        (phase, *(math.nan if figure == UNKNOWN else figure for figure in figures))
+        for phase, *figures in found
+    ]
+    return known, np.array(renamed)[place]  # type: ignore[return-value]
+
+
+def _phase(state: StreamState, temperature: float, pressure: float, fraction: float) -> str:
+    """The phase of a bulk state; empty where the fluid has no such state."""
+    if state.phase:
+        return state.phase
+    try:
+        fluid = state.fluid.state(known_or_none(pressure), known_or_none(fraction), "")
+    except PropertyFault:
+        return ""
+    return "" if math.isnan(temperature) else fluid.phase_at(temperature)
+
+
+def known_or_none(figure: float) -> float | None:
+    """A figure, or None where there is none (NaN)."""
+    return None if math.isnan(figure) else figure
+
+
+def stream_states(
+    state: StreamState, values: Mapping[str, Array]
+) -> tuple[list[tuple[float, float, float]], Array]:
+    """The different bulk states of a stream, and which of them each sample has.
+
+    A state is temperature, pressure and fraction; NaN for what the stream does not have.
+    """
+    names = (state.temperature, state.pressure, state.fraction)
+    columns = np.broadcast_arrays(
+        *(np.asarray(values[name], dtype=float) if name else np.asarray(math.nan) for name in names)
+    )
+    rows = np.nan_to_num(np.stack([column.ravel() for column in columns]), nan=UNKNOWN)
+    found: dict[tuple[float, ...], int] = {}
+    place = [found.setdefault(row, len(found)) for row in zip(*rows.tolist(), strict=True)]
+    states = [
+        (first, second, third)
+        for first, second, third in (
+            tuple(math.nan if figure == UNKNOWN else figure for figure in row) for row in found
         )
-    return checks
+    ]
+    return states, np.array(place).reshape(columns[0].shape)
 
 
 # --- what the runner decided ------------------------------------------------------------------------

@@ -10,7 +10,7 @@ import numpy as np
 
 from calcbook import properties
 from calcbook.calcfile.calculation import FluidText
-from calcbook.properties import Fluid, FluidAtPressure
+from calcbook.properties import Fluid, FluidAtPressure, PropertyFault
 
 Array = np.ndarray
 Read = Callable[[FluidAtPressure, Array], Array]
@@ -138,7 +138,12 @@ class PropertyOperation:
         phase = self.phase
         if self.keeps_phase and not phase:
             phase = "liquid" if named["liquid"] else "gas"
-        return read(self.source.state(named.get("p"), named.get("w"), phase), temperature)
+        try:
+            state = self.source.state(named.get("p"), named.get("w"), phase)
+        except PropertyFault:
+            # A sample at a state that the fluid cannot have; of a record's own state the fault is told before.
+            return np.full(temperature.shape, np.nan)
+        return read(state, temperature)
 
 
 @dataclass(frozen=True)

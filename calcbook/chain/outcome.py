@@ -5,10 +5,12 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass
 
+from calcbook.chain.flips_outcome import Flips
 from calcbook.chain.growth_outcome import OverTime
 from calcbook.chain.rating_outcome import Rating
 from calcbook.chain.solve import Solution
 from calcbook.chain.survey_outcome import SurveyOutcome
+from calcbook.chain.sweep_outcome import Sweep
 from calcbook.chain.types import Chain, ChainStep, Input, OpenItem, RunnerAssumption
 from calcbook.chain.uncertainty_outcome import Uncertainty
 from calcbook.quantities import QuantityKind
@@ -201,6 +203,8 @@ class Solved:
     uncertainty: Uncertainty | None = None
     over_time: OverTime | None = None
     survey: SurveyOutcome | None = None
+    sweep: Sweep | None = None
+    flips: Flips | None = None
 
     @property
     def base(self) -> CaseOutcome:

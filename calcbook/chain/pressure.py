@@ -177,7 +177,7 @@ def law_of(drop: PressureDrop, solution: Solution) -> Candidate | None:
     """The friction law that a single record uses; None where the card of the sum has its own."""
     if not drop.laws:
         return None
-    return drop.laws[int(_choice(drop, solution.values).ravel()[0])]
+    return drop.laws[int(law_choice(drop, solution.values).ravel()[0])]
 
 
 def pressure_notes(chain: Chain, group: Group, solutions: Mapping[str, Solution]) -> list[str]:
@@ -224,7 +224,7 @@ def _holds(row: ChoiceRow, values: Mapping[str, Array]) -> Array:
     return np.asarray(evaluate(row.relation, {symbol: values[bound] for symbol, bound in row.inputs.items()}))
 
 
-def _choice(drop: PressureDrop, values: Mapping[str, Array]) -> Array:
+def law_choice(drop: PressureDrop, values: Mapping[str, Array]) -> Array:
     """The number of the law of each sample: the first row that holds."""
     choice = np.asarray(drop.choice[-1].candidate)
     for row in reversed(drop.choice):
@@ -242,7 +242,7 @@ def _evaluated(drop: PressureDrop, solution: Solution, shared: set[str]) -> dict
 
     make(drop.choice_steps)
     if drop.laws:
-        choice = _choice(drop, values)
+        choice = law_choice(drop, values)
         used = np.unique(choice)
         for number in used:
             make(drop.laws[int(number)].steps)

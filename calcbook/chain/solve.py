@@ -54,6 +54,10 @@ class Solution:
     jumps: dict[str, Array] = field(default_factory=dict)
     jump_sides: dict[str, tuple[Array, Array]] = field(default_factory=dict)
 
+    def figure(self, name: str) -> Array:
+        """One figure at every sample; 0-d where it does not vary."""
+        return np.asarray(self.values[name], dtype=float)
+
     def number(self, name: str) -> float:
         """One figure of a single record."""
         return float(np.asarray(self.values[name]).ravel()[0])
@@ -71,18 +75,20 @@ def solve(
     condition: str,
     forced: Mapping[str, Candidate] | None = None,
     keep: Collection[str] | None = None,
+    thorough: bool = True,
 ) -> Solution:
     """Solve a chain for one condition on SI arrays of its inputs (by id, broadcast together).
 
     ``forced`` puts a candidate in place of a film's own choice, for the cross-check. ``keep`` names the
     steps whose values are wanted; without it all are kept, which for many samples takes much memory. Figures
-    that the file leaves open are found first, unless they stand in ``inputs``.
+    that the file leaves open are found first, unless they stand in ``inputs``. A search over many samples is not
+    ``thorough``: it gives up a sample after a few passes of Newton's method and brackets none, which takes thousands.
     """
     if chain.open_figures:
         from calcbook.chain.completing import completed
 
         inputs = completed(chain, inputs, forced)
-    return closed(chain, inputs, condition, forced, keep)
+    return closed(chain, inputs, condition, forced, keep, thorough)
 
 
 def closed(
@@ -91,6 +97,7 @@ def closed(
     condition: str,
     forced: Mapping[str, Candidate] | None = None,
     keep: Collection[str] | None = None,
+    thorough: bool = True,
 ) -> Solution:
     """As ``solve``, for inputs that leave nothing open."""
     shape = np.broadcast_shapes(*(np.shape(value) for value in inputs.values()))
@@ -104,7 +111,7 @@ def closed(
             piece = slice(start, min(start + PIECE, size))
             part = {name: value[piece] if value.ndim else value for name, value in flat.items()}
             engine = Engine(chain, part, condition, forced or {}, 1 if shape == () else piece.stop - start)
-            engine.solve()
+            engine.solve(thorough)
             joined.take(engine, piece, keep)
     return joined.solution()
 
@@ -232,7 +239,7 @@ class Engine:
 
     # -- the whole way ------------------------------------------------------------------------------
 
-    def solve(self) -> None:
+    def solve(self, thorough: bool = True) -> None:
         """Close the circuit and evaluate every step at the answer, into ``values``."""
         run(self.chain.steps, self.values)
         self._clean_deposits()
@@ -241,22 +248,22 @@ class Engine:
             for element in self.chain.elements
         }
         if self.chain.has_temperatures:
-            from calcbook.chain.closing import close
+            from calcbook.chain.closing import FEW_PASSES, MAXIMUM_PASSES, close
 
             self._fix()
-            close(self)
+            close(self, MAXIMUM_PASSES if thorough else FEW_PASSES)
         self.finish()
         if self.chain.has_temperatures:
-            self._bracket_what_is_open()
+            self._bracket_what_is_open(thorough)
         run(self.chain.circuit, self.values)
 
-    def _bracket_what_is_open(self) -> None:
+    def _bracket_what_is_open(self, thorough: bool) -> None:
         met = self._residual() <= RESIDUAL_TOLERANCE + 4.0 * self.resolution(self.drops, self.everything)
         open_samples = np.flatnonzero(~(self.converged & met))
         if not len(open_samples):
             return
         self.converged[open_samples] = False
-        if not self.moving:
+        if not self.moving or not thorough:
             return
         from calcbook.chain.bracket import bracket
 

@@ -15,10 +15,12 @@ from calcbook.record.sections.chain import chain
 from calcbook.record.sections.circuit import circuit
 from calcbook.record.sections.closing import closing_line, references, revision_history, sign_off
 from calcbook.record.sections.duty import two_ways
+from calcbook.record.sections.flips import flips
 from calcbook.record.sections.head import brief, changes, purpose, title_block
 from calcbook.record.sections.inputs import assumptions, givens
 from calcbook.record.sections.review import cautions, review
 from calcbook.record.sections.survey import survey
+from calcbook.record.sections.sweep import sweep
 from calcbook.record.sections.validity import cross_check, validity
 from calcbook.record.software import Software, software_of
 
@@ -35,6 +37,8 @@ SECTIONS: tuple[Callable[[Page], list[Block]], ...] = (
     cross_check,
     two_ways,
     sensitivity,
+    sweep,
+    flips,
     cases,
     survey,
     review,

@@ -4,9 +4,11 @@ from __future__ import annotations
 
 import json
 
+from calcbook.chain.flips_outcome import Flip
 from calcbook.chain.growth_outcome import OverTime
 from calcbook.chain.outcome import CaseOutcome, CheckResult, CriterionResult, Solved, StepRow, TermRow
 from calcbook.chain.rating_outcome import Rating
+from calcbook.chain.sweep_outcome import Sweep
 from calcbook.chain.types import CONDITIONS, SERVICE, OpenItem
 from calcbook.formulas import Relation
 from calcbook.quantities import QuantityKind
@@ -57,6 +59,8 @@ def results_data(solved: Solved, digest: Digest, software: Software) -> Data:
         "cases": {case.name: _case(case) for case in solved.cases[1:]},
         **({"uncertainty": uncertainty_data(solved.uncertainty)} if solved.uncertainty is not None else {}),
         **survey,
+        "sweep": _sweep(solved.sweep) if solved.sweep is not None else None,
+        "flips": [_flip(flip) for flip in solved.flips.flips] if solved.flips is not None else [],
     }
 
 
@@ -200,4 +204,40 @@ def _case(case: CaseOutcome) -> Data:
         "results": _results(case),
         "checks": [_check(check) for check in case.checks],
         "open_items": [_open_item(item) for item in case.open_items],
+    }
+
+
+def _sweep(sweep: Sweep) -> Data:
+    """The givens with their figures, and every result sample by sample; of two givens the second runs fastest."""
+    return {
+        "givens": [
+            {
+                "symbol": axis.input.symbol,
+                "figures": [rounded(figure) for figure in axis.figures],
+                "unit": axis.input.kind.unit,
+            }
+            for axis in sweep.axes
+        ],
+        "results": {
+            result.name: {"values": [rounded(value) for value in result.values], "unit": result.kind.unit}
+            for result in sweep.results
+        },
+        "no_answer": list(sweep.missing),
+        "outside": [list(names) for names in sweep.outside],
+    }
+
+
+def _flip(flip: Flip) -> Data:
+    return {
+        "kind": flip.kind,
+        "id": flip.id,
+        "condition": flip.condition,
+        "case": flip.case,
+        "given": flip.input.symbol,
+        "now": rounded(flip.now),
+        "flips_at": rounded(flip.at),
+        "unit": flip.input.kind.unit,
+        "tolerances": rounded(flip.tolerances),
+        "was": flip.was,
+        "becomes": flip.becomes,
     }

@@ -225,7 +225,10 @@ def test_the_largest_allowance_leaves_no_margin(tmp_path: Path) -> None:
 def test_a_unit_that_is_too_small_has_no_largest_allowance(tmp_path: Path) -> None:
     answer = solved(tmp_path, length="300 m")
     assert figure(answer, "area_margin") < 0.0
-    assert [item.id for item in answer.open_items] == ["duty / area / margin / service", "duty / area / margin / clean"]
+    assert [item.id for item in answer.open_items] == [
+        "duty / area / margin / service",
+        "duty / area / margin / clean",
+    ]
     assert "largest_allowance deposit" not in answer.base.results
 
 

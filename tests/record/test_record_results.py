@@ -16,7 +16,7 @@ from calcbook.record.results import rounded
 
 KEYS = [
     *("calculation", "digest", "software", "results", "conditions", "steps", "checks", "acceptance"),
-    *("assumptions", "open_items", "cases"),
+    *("assumptions", "open_items", "cases", "sweep", "flips"),
 ]
 
 

@@ -1,0 +1,425 @@
+"""Verdicts at many samples: criteria, limits, methods, the controlling term; and the samples without an answer.
+
+The relations, limits and findings are those of a single record, asked of arrays. Plausible bands are left out:
+they look for slips of the pen, and are no limits of a method.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable, Iterator, Mapping, Sequence
+from dataclasses import dataclass, field
+
+import numpy as np
+
+from calcbook.calcfile.calculation import Acceptance
+from calcbook.chain.analysis import (
+    CONTROLLING_SHARE,
+    ResultFigures,
+    criterion_figures,
+    result_figures,
+)
+from calcbook.chain.checks import (
+    check_margins,
+    check_states,
+    checked_figure,
+    relation_margins,
+    within_bound,
+)
+from calcbook.chain.completing import completed
+from calcbook.chain.findings import film_steps, known_or_none, stream_phases, stream_states, wall_limits
+from calcbook.chain.flips_outcome import CONTROLLING, CRITERION, LIMIT, METHOD
+from calcbook.chain.pressure import drops, evaluate_pressure_drops, law_choice
+from calcbook.chain.solve import Solution, solve
+from calcbook.chain.types import (
+    CONDITIONS,
+    SERVICE,
+    Chain,
+    ChainCheck,
+    ChoiceRow,
+    Group,
+    Layer,
+    StreamState,
+)
+from calcbook.library.operations import run
+from calcbook.properties import PropertyFault
+from calcbook.quantities import read_any
+
+Array = np.ndarray
+Key = tuple[str, str, str]
+Margins = Callable[[], list[Array]]
+# A sample at which there is no verdict: the limit is not there, cannot be evaluated, or the result is not known.
+NO_VERDICT = -1
+MET_WORDS = ("met", "not met")
+LIMIT_WORDS = ("within", "outside", "accepted", "not counting")
+HELD, BROKEN, ACCEPTED, IDLE = range(len(LIMIT_WORDS))
+# From the places of the states of a single limit.
+_CODE_OF_STATE = np.array([HELD, BROKEN, NO_VERDICT, IDLE])
+NO_CONTROLLING = "none"
+OPEN_CIRCUIT = "the circuit does not close"
+
+
+@dataclass(frozen=True, eq=False)
+class Verdicts:
+    """One verdict at every sample: ``codes`` are places in ``words``, or ``NO_VERDICT``.
+
+    ``margins`` gives figures that pass zero where the verdict changes, as far as there are any.
+    """
+
+    kind: str
+    id: str
+    condition: str
+    words: tuple[str, ...]
+    codes: Array
+    margins: Margins
+    level: str = ""
+
+    @property
+    def key(self) -> Key:
+        return self.kind, self.id, self.condition
+
+
+@dataclass(eq=False)
+class Samples:
+    """Solved samples with their verdicts. ``missing`` is 0 for an answer, else the place of a reason.
+
+    Samples that cannot have an answer were not solved: ``solved`` are the others, and verdicts stand for them.
+    """
+
+    missing: Array
+    solved: Array = field(default_factory=lambda: np.empty(0, dtype=int))
+    results: Mapping[str, ResultFigures] = field(default_factory=dict)
+    verdicts: Mapping[Key, Verdicts] = field(default_factory=dict)
+    reasons: list[str] = field(default_factory=lambda: [""])
+
+    def mark(self, mask: Array, reason: str, places: Array | None = None) -> None:
+        """Say of samples (all, or those at ``places``) that have an answer so far why they have none."""
+        wrong = np.zeros(self.missing.shape, dtype=bool)
+        wrong[slice(None) if places is None else places] = mask
+        wrong &= self.missing == 0
+        if wrong.any():
+            if reason not in self.reasons:
+                self.reasons.append(reason)
+            self.missing[wrong] = self.reasons.index(reason)
+
+    def whole(self, figures: Array, absent: float) -> Array:
+        """Figures of the solved samples among all."""
+        figures = np.asarray(figures)
+        found = np.full(self.missing.shape, absent, dtype=figures.dtype)
+        found[self.solved] = figures
+        return found
+
+    def codes(self, key: Key) -> Array:
+        """The codes of a verdict at every sample."""
+        return self.whole(self.verdicts[key].codes, NO_VERDICT)
+
+    def margins(self, key: Key) -> Array:
+        """The margins of a verdict at every sample, a row each; NaN where there are none."""
+        with np.errstate(all="ignore"):
+            margins = self.verdicts[key].margins() if key in self.verdicts else []
+        rows = [self.whole(np.asarray(margin, dtype=float), np.nan) for margin in margins]
+        return np.stack(rows) if rows else np.empty((0, len(self.missing)))
+
+
+def evaluate_samples(
+    chain: Chain,
+    inputs: Mapping[str, Array],
+    cases: Sequence[str] = ("",),
+    case_of: Array | None = None,
+    phases: Mapping[str, Sequence[str]] | None = None,
+) -> Samples:
+    """Solve samples (inputs by id, one row or one figure for all) clean and in service, with every verdict.
+
+    ``case_of`` is the place in ``cases`` that each sample belongs to: acceptances may hold for one case only.
+    ``phases`` are the phases of streams by case: a sample in which one has another phase gets no answer. The
+    calculation's own cases must have solved without a fault.
+    """
+    size = max(np.size(value) for value in inputs.values())
+    belongs = case_of if case_of is not None else np.zeros(size, dtype=int)
+    samples = Samples(np.zeros(size, dtype=int))
+    inputs = completed(chain, inputs)
+    with np.errstate(all="ignore"):
+        _mark_states(chain, bulk_values(chain, inputs), samples, belongs, phases or {})
+        samples.solved = np.flatnonzero(samples.missing == 0)
+        if not len(samples.solved):
+            return samples
+        if len(samples.solved) < size:
+            inputs = {
+                name: value[samples.solved] if np.ndim(value) else value for name, value in inputs.items()
+            }
+        _solve(chain, inputs, cases, belongs[samples.solved], samples)
+    return samples
+
+
+def _solve(
+    chain: Chain, inputs: Mapping[str, Array], cases: Sequence[str], case_of: Array, samples: Samples
+) -> None:
+    solutions = {condition: solve(chain, inputs, condition, thorough=False) for condition in CONDITIONS}
+    for solution in solutions.values():
+        evaluate_pressure_drops(chain, solution)
+    samples.results = result_figures(chain, solutions)
+    verdicts = [
+        *_criteria(chain, solutions, samples.results),
+        *(
+            verdict
+            for condition in reversed(CONDITIONS)
+            for verdict in _Limits(chain, solutions[condition], cases, case_of).verdicts()
+        ),
+        *_methods(chain, solutions),
+        _controlling(chain, solutions[SERVICE]),
+    ]
+    samples.verdicts = {item.key: item for item in verdicts}
+    for verdict in verdicts:
+        if verdict.kind == LIMIT and verdict.level == "stop":
+            reason = f"no number is given outside {verdict.id}"
+            samples.mark(verdict.codes == BROKEN, reason, samples.solved)
+    for solution in solutions.values():
+        open_circuit = ~solution.converged | ~np.isfinite(solution.figure(chain.results["U"]))
+        samples.mark(open_circuit, OPEN_CIRCUIT, samples.solved)
+
+
+# --- criteria ---------------------------------------------------------------------------------------
+
+
+def _criteria(
+    chain: Chain, solutions: Mapping[str, Solution], results: Mapping[str, ResultFigures]
+) -> Iterator[Verdicts]:
+    for item in criterion_figures(chain, solutions, results):
+        codes = np.where(item.met, 0, 1)
+        codes = np.where(np.isfinite(item.margin), codes, NO_VERDICT)
+        yield Verdicts(
+            CRITERION, f"criterion {item.number}", "", MET_WORDS, codes, _fixed_margins(item.margin)
+        )
+
+
+def _fixed_margins(*margins: Array) -> Margins:
+    return lambda: list(margins)
+
+
+# --- limits -----------------------------------------------------------------------------------------
+
+
+@dataclass(eq=False)
+class _Limit:
+    """One id of a limit under construction: a sample takes it from whichever part of the chain acts there."""
+
+    level: str
+    codes: Array
+    figure: Array | None
+    margins: list[Margins]
+
+
+class _Limits:
+    """The limits of one condition, by id."""
+
+    def __init__(self, chain: Chain, solution: Solution, cases: Sequence[str], case_of: Array):
+        self.chain = chain
+        self.solution = solution
+        self.cases = cases
+        self.case_of = case_of
+        self.found: dict[str, _Limit] = {}
+
+    def verdicts(self) -> Iterator[Verdicts]:
+        self._cards()
+        for item in wall_limits(self.chain, self.solution):
+            codes = np.where(item.acts, _CODE_OF_STATE[item.states], NO_VERDICT)
+            self._put(item.id, "range", codes, item.surface, _fixed_margins(item.margin))
+        condition = self.solution.condition
+        for name, limit in self.found.items():
+            codes = self._with_acceptances(name, limit)
+            yield Verdicts(LIMIT, name, condition, LIMIT_WORDS, codes, _joined(limit.margins), limit.level)
+
+    def _cards(self) -> None:
+        """As in a record: the shared limits, those of each element, those of what each sample chose."""
+        solution = self.solution
+        self._checks(self.chain.checks)
+        for element in self.chain.elements:
+            if isinstance(element, Layer):
+                self._checks(element.checks)
+                continue
+            for branch in element.branches:
+                choice = solution.chosen.get(branch.name, np.zeros((), dtype=int))
+                for number in np.unique(choice):
+                    self._checks(branch.candidates[int(number)].checks, choice == number)
+        for _, _, drop in drops(self.chain):
+            if drop.laws:
+                choice = law_choice(drop, solution.values)
+                for number in np.unique(choice):
+                    self._checks(drop.laws[int(number)].checks, choice == number)
+            self._checks(drop.total.checks)
+
+    def _checks(self, checks: Sequence[ChainCheck], acts: Array | None = None) -> None:
+        values = self.solution.values
+        for check in checks:
+            codes = _CODE_OF_STATE[check_states(check, values)]
+            if acts is not None:
+                codes = np.where(acts, codes, NO_VERDICT)
+            self._put(
+                check.id,
+                check.limit.level,
+                codes,
+                checked_figure(check, values) if self._acceptances(check.id) else None,
+                _margins_of(check, values),
+            )
+
+    def _put(self, name: str, level: str, codes: Array, figure: Array | None, margins: Margins) -> None:
+        known = self.found.get(name)
+        if known is None:
+            self.found[name] = _Limit(level, codes, figure, [margins])
+            return
+        takes = (known.codes == NO_VERDICT) | (codes == BROKEN)
+        known.codes = np.where(takes, codes, known.codes)
+        if figure is not None:
+            known.figure = figure if known.figure is None else np.where(takes, figure, known.figure)
+        known.margins.append(margins)
+
+    def _acceptances(self, name: str) -> list[Acceptance]:
+        return [item for item in self.chain.calculation.accept if item.check == name]
+
+    def _with_acceptances(self, name: str, limit: _Limit) -> Array:
+        """The codes with the engineer's acceptances; the first that holds for a sample settles it."""
+        codes = limit.codes
+        if limit.level == "stop" or limit.figure is None:
+            return codes
+        unsettled = np.ones(self.case_of.shape, dtype=bool)
+        for item in self._acceptances(name):
+            everywhere = item.within in ("all", self.solution.condition)
+            applies = unsettled & (
+                everywhere | np.array([case == item.within for case in self.cases])[self.case_of]
+            )
+            if item.bound is not None:
+                bound = (item.bound.quantity or read_any(item.bound.text)).value
+                held = within_bound(item.direction, bound, limit.figure)
+                codes = np.where(applies & held & (codes == BROKEN), ACCEPTED, codes)
+                limit.margins.append(_fixed_margins(limit.figure - bound))
+            unsettled &= ~applies
+        return codes
+
+
+def _margins_of(check: ChainCheck, values: Mapping[str, Array]) -> Margins:
+    return lambda: check_margins(check, values)
+
+
+def _joined(margins: Sequence[Margins]) -> Margins:
+    return lambda: [figure for part in margins for figure in part()]
+
+
+# --- methods and the controlling term ---------------------------------------------------------------
+
+
+def _methods(chain: Chain, solutions: Mapping[str, Solution]) -> Iterator[Verdicts]:
+    """The method of every film that has a choice, and the friction law beside it."""
+    for condition in reversed(CONDITIONS):
+        solution = solutions[condition]
+        for group in (chain.inner, chain.outer):
+            for branch in group.branches:
+                choice = solution.chosen.get(branch.name)
+                if choice is not None and len(branch.candidates) > 1:
+                    names = [candidate.method.id for candidate in branch.candidates]
+                    yield _choice(branch.name, condition, names, choice, branch.choice, solution)
+        for _, branch, drop in drops(chain):
+            if len(drop.laws) > 1:
+                names = [law.method.id for law in drop.laws]
+                name = f"{branch.name} / pressure drop"
+                yield _choice(
+                    name, condition, names, law_choice(drop, solution.values), drop.choice, solution
+                )
+
+
+def _choice(
+    name: str,
+    condition: str,
+    names: list[str],
+    choice: Array,
+    rows: Sequence[ChoiceRow],
+    solution: Solution,
+) -> Verdicts:
+    first = np.array([names.index(method) for method in names])
+
+    def margins() -> list[Array]:
+        return [
+            figure
+            for row in rows
+            if row.relation is not None
+            for figure in relation_margins(row.relation, row.inputs, solution.values)
+        ]
+
+    return Verdicts(METHOD, name, condition, tuple(names), first[choice], margins)
+
+
+def _controlling(chain: Chain, solution: Solution) -> Verdicts:
+    """The term with half of the total resistance or more, or none."""
+    total = solution.figure(chain.results["R total"])
+    shares = [solution.figure(chain.results[f"R {element.name}"]) / total for element in chain.elements]
+    table = np.stack(np.broadcast_arrays(*shares))
+    largest = np.argmax(table, axis=0)
+    codes = np.where(table.max(axis=0) >= CONTROLLING_SHARE, largest, len(shares))
+    words = (*(element.name for element in chain.elements), NO_CONTROLLING)
+    margins = _fixed_margins(*(share - CONTROLLING_SHARE for share in shares))
+    return Verdicts(CONTROLLING, CONTROLLING, SERVICE, words, codes, margins)
+
+
+# --- samples without an answer ----------------------------------------------------------------------
+
+
+def bulk_values(chain: Chain, inputs: Mapping[str, Array]) -> dict[str, Array]:
+    """What is known of samples before the circuit is closed: geometry, streams and derived quantities."""
+    values: dict[str, Array] = dict(chain.constants)  # type: ignore[arg-type]
+    values.update(inputs)
+    run(chain.steps, values)
+    for state in chain.streams.values():
+        wanted = {state.temperature, state.pressure, state.fraction} - {"", *values}
+        run([step for step in film_steps(chain) if step.id in wanted], values)
+    return values
+
+
+def _mark_states(
+    chain: Chain,
+    values: Mapping[str, Array],
+    samples: Samples,
+    case_of: Array,
+    phases: Mapping[str, Sequence[str]],
+) -> None:
+    """Samples whose record would have a fault of state, and those in which a stream has another phase."""
+    for before, after in zip(chain.surfaces, chain.surfaces[1:], strict=False):
+        if after.diameter:
+            inner, outer = np.asarray(values[before.diameter]), np.asarray(values[after.diameter])
+            samples.mark(~((outer > inner) & (inner > 0.0)), "the wall is turned inside out")
+    for state in chain.streams.values():
+        states, place = stream_states(state, values)
+        words = [_state_fault(state, *figures) for figures in states]
+        for reason in dict.fromkeys(word for word in words if word):
+            samples.mark(np.array([word == reason for word in words])[place], f"{state.name}: {reason}")
+        if state.name in phases:
+            known, which = stream_phases(state, values)
+            other = np.array([phase for phase, *_ in known])[which] != np.array(phases[state.name])[case_of]
+            samples.mark(other, f"{state.name} has another phase")
+    for here, opposite in ((chain.inner, chain.outer), (chain.outer, chain.inner)):
+        _mark_directions(here, opposite, values, samples)
+
+
+def _mark_directions(here: Group, opposite: Group, values: Mapping[str, Array], samples: Samples) -> None:
+    """A film that condenses has the colder side opposite, a film that boils the hotter one."""
+    for branch in here.branches:
+        change = branch.situation.changes_phase if branch.situation is not None else ""
+        if change and branch.reference in values and opposite.bulk in values:
+            own, other = np.asarray(values[branch.reference]), np.asarray(values[opposite.bulk])
+            wrong = ~(own > other) if change == "condensing" else ~(own < other)
+            samples.mark(
+                wrong & ~np.isnan(own) & ~np.isnan(other),
+                f"{branch.name}: the other side is not {'colder' if change == 'condensing' else 'hotter'}",
+            )
+
+
+def _state_fault(state: StreamState, temperature: float, pressure: float, fraction: float) -> str:
+    """The words of a fault of a bulk state, empty for a good one."""
+    try:
+        fluid = state.fluid.state(known_or_none(pressure), known_or_none(fraction), state.phase)
+    except PropertyFault as error:
+        return error.code.replace("-", " ")
+    if math.isnan(temperature):
+        return "no saturation temperature" if state.saturation else ""
+    for finding in fluid.check_state(temperature, state.phase or None):
+        if finding.level == "fault":
+            return finding.code.replace("-", " ")
+    return ""

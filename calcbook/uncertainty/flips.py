@@ -1,0 +1,588 @@
+"""Distance to flip: the smallest change of each given with which a verdict is another one.
+
+One call of the engine lays every given of every case out over its search, all else as it stands. Where a
+verdict changes between neighbouring figures, the next calls divide that interval: near the place where the
+figure that decides (result less criterion, both sides of a limit, share less one half) passes zero, which
+neighbouring figures tell by interpolation, and evenly where nothing continuous decides. What is reported is
+what was evaluated, never what was interpolated. A verdict that flips and flips back between two neighbouring
+figures of the search is not seen.
+"""
+
+from __future__ import annotations
+
+import itertools
+import math
+from collections.abc import Iterable, Iterator
+from dataclasses import dataclass, field
+from decimal import ROUND_CEILING, ROUND_FLOOR, Context, Decimal
+
+import numpy as np
+
+from calcbook.calcfile.calculation import Given
+from calcbook.chain.findings import stream_phases
+from calcbook.chain.flips_outcome import CONTROLLING, CRITERION, LIMIT, METHOD, Flip, Flips, Searched
+from calcbook.chain.outcome import CaseOutcome, Solved
+from calcbook.chain.samples import (
+    BROKEN,
+    IDLE,
+    NO_VERDICT,
+    Samples,
+    Verdicts,
+    evaluate_samples,
+)
+from calcbook.chain.types import SERVICE, Chain, Input
+from calcbook.quantities import in_unit, read_any, read_tolerance
+from calcbook.uncertainty.lines import COUNTED, Reach, changes_fluid_state, reach
+
+Array = np.ndarray
+Key = tuple[str, str, str]
+Group = tuple[str, ...]
+# A figure at which a verdict flips is known this well, relative to itself, and to the change that leads to it.
+KNOWN, KNOWN_OF_CHANGE = 1e-9, 1e-4
+# Printed figures have so many digits, and more where the change would have fewer than this many.
+PRINTED_DIGITS, CHANGE_DIGITS = 6, 4
+TYPED_DIGITS = 12
+MOST_ROUNDS = 16
+# How far beside an interpolated place an interval is divided, in parts of the interval: at first, then again.
+FIRST_PARTS = (1e-4, 3e-3, 0.06)
+NEXT_PARTS = (1e-6, 1e-2)
+STATE_PARTS = (1e-3, 0.03)
+# The place itself is enclosed by this part of how well it must be known.
+CLOSE = 0.3
+# Samples on either side of an interval that tell where a margin passes zero in it.
+AROUND = 2
+EVENLY_WITHOUT, EVENLY_AT_END, EVENLY_FOR_STATES = 15, 7, 3
+INTERPOLATED_ROUNDS, END_ROUNDS = 2, 2
+
+
+def distances_to_flip(solved: Solved) -> Flips:
+    """The distances to flip of the base case, and of every named case where acceptance is stated."""
+    named = solved.cases[1:] if solved.chain.calculation.acceptance else ()
+    return _Search(solved, (solved.base, *named)).flips()
+
+
+@dataclass(eq=False)
+class _Line:
+    """One given of one case on one side: its samples so far, nearest first, by their places in the whole."""
+
+    case: int
+    item: Input
+    direction: int
+    whole: bool
+    changes_state: bool
+    reach: Reach
+    now: float
+    figures: Array
+    places: Array
+
+    @property
+    def id(self) -> str:
+        return self.item.id
+
+    def takes(self, figures: Iterable[float], first_place: int) -> None:
+        """Samples that were evaluated, put among the others."""
+        added = np.fromiter(figures, dtype=float)
+        self.figures = np.concatenate([self.figures, added])
+        self.places = np.concatenate([self.places, np.arange(first_place, first_place + len(added))])
+        order = np.argsort(np.abs(self.figures - self.now), kind="stable")
+        self.figures, self.places = self.figures[order], self.places[order]
+
+
+@dataclass(frozen=True, slots=True)
+class _Bracket:
+    """A verdict (a row of the table) that changes between two neighbouring figures of a line.
+
+    ``before`` is the number of the nearer sample on the line as it was, ``becomes`` the code of the farther one.
+    """
+
+    line: _Line
+    row: int
+    before: int
+    inside: float
+    outside: float
+    becomes: int
+
+    @property
+    def least(self) -> float:
+        return abs(self.inside - self.line.now)
+
+    @property
+    def most(self) -> float:
+        return abs(self.outside - self.line.now)
+
+    @property
+    def is_known(self) -> bool:
+        width = abs(self.outside - self.inside)
+        if self.line.whole:
+            return width <= 1.0
+        return width <= min(KNOWN * abs(self.outside), KNOWN_OF_CHANGE * self.most)
+
+
+@dataclass(eq=False)
+class _Table:
+    """Every sample that was evaluated: the codes of every verdict, what has no answer, margins when asked for."""
+
+    batches: list[Samples] = field(default_factory=list)
+    keys: list[Key] = field(default_factory=list)
+    codes: Array = field(default_factory=lambda: np.empty((0, 0), dtype=int))
+    missing: Array = field(default_factory=lambda: np.empty(0, dtype=int))
+    reasons: list[str] = field(default_factory=lambda: [""])
+    margins: dict[int, Array] = field(default_factory=dict)
+
+    def takes(self, samples: Samples) -> int:
+        """Add a batch; the place of its first sample."""
+        start, size = len(self.missing), len(samples.missing)
+        for key in samples.verdicts:
+            if key not in self.keys:
+                self.keys.append(key)
+        codes = np.full((len(self.keys), start + size), NO_VERDICT)
+        codes[: len(self.codes), :start] = self.codes
+        for row, key in enumerate(self.keys):
+            if key in samples.verdicts:
+                codes[row, start:] = samples.codes(key)
+        self.codes = codes
+        names = {reason: self._reason(reason) for reason in samples.reasons}
+        renamed = np.array([names[reason] for reason in samples.reasons])
+        self.missing = np.concatenate([self.missing, renamed[samples.missing]])
+        self.batches.append(samples)
+        self.margins.clear()
+        return start
+
+    def _reason(self, reason: str) -> int:
+        if reason not in self.reasons:
+            self.reasons.append(reason)
+        return self.reasons.index(reason)
+
+    def margin(self, row: int) -> Array:
+        """The margins of one verdict at every sample, a row each; NaN where a batch has none."""
+        found = self.margins.get(row)
+        if found is None:
+            parts = [batch.margins(self.keys[row]) for batch in self.batches]
+            count = max(len(part) for part in parts)
+            padded = [
+                np.vstack([part, np.full((count - len(part), part.shape[1]), np.nan)]) for part in parts
+            ]
+            found = self.margins[row] = np.hstack(padded)
+        return found
+
+    def verdict(self, row: int) -> Verdicts:
+        """A verdict with its words, from the first batch that has it."""
+        key = self.keys[row]
+        return next(batch.verdicts[key] for batch in self.batches if key in batch.verdicts)
+
+
+class _Search:
+    def __init__(self, solved: Solved, cases: tuple[CaseOutcome, ...]):
+        self.chain: Chain = solved.chain
+        self.cases = cases
+        self.names = tuple(case.name for case in cases)
+        self.base = {name: np.array([case.inputs[name] for case in cases]) for name in self.chain.inputs}
+        self.phases = self._phases()
+        self.flow_directions = np.array(
+            [np.sign(case.results["heat_flow_service"].value) for case in cases]
+            if "heat_flow_service" in cases[0].results
+            else []
+        )
+        self.table = _Table()
+        self.lines: list[_Line] = []
+        self.best: dict[Group, _Bracket] = {}
+
+    def flips(self) -> Flips:
+        """The whole search."""
+        self._lay_out()
+        for number in range(MOST_ROUNDS):
+            wanted = self._wanted(number)
+            if not wanted:
+                break
+            self._evaluate(wanted)
+        found = self._reported()
+        order = {kind: place for place, kind in enumerate((CRITERION, LIMIT, METHOD, CONTROLLING))}
+        found.sort(key=lambda flip: (order[flip.kind], float(f"{flip.steps:.6g}")))
+        return Flips(tuple(found), tuple(self._searched()))
+
+    # -- samples ------------------------------------------------------------------------------------
+
+    def _lay_out(self) -> None:
+        """The first samples: the cases themselves, and every given of each over its search."""
+        states = changes_fluid_state(self.chain)
+        for case in range(len(self.cases)):
+            for name, item in self.chain.inputs.items():
+                now = float(self.base[name][case])
+                whole = item.kind.name in COUNTED and now == int(now)
+                for direction in (-1, 1) if item.is_given else ():
+                    far = reach(item, now, direction, name in states)
+                    self.lines.append(
+                        _Line(
+                            case,
+                            item,
+                            direction,
+                            whole,
+                            name in states,
+                            far,
+                            now,
+                            np.array([now]),
+                            np.array([case]),
+                        )
+                    )
+        self._evaluate([(line, line.reach.figures) for line in self.lines if line.reach.figures], first=True)
+
+    def _evaluate(self, wanted: list[tuple[_Line, tuple[float, ...]]], first: bool = False) -> None:
+        """Evaluate new figures of lines, in one call; those with fluid states of their own in another.
+
+        The ``first`` call starts with the cases as they stand.
+        """
+        for changes_state in (False, True):
+            part = [(line, figures) for line, figures in wanted if line.changes_state == changes_state]
+            ahead = len(self.cases) if first and not changes_state else 0
+            if not part and not ahead:
+                continue
+            place = self._solve(part, ahead)
+            for line, figures in part:
+                line.takes(figures, place)
+                place += len(figures)
+
+    def _solve(self, part: list[tuple[_Line, tuple[float, ...]]], ahead: int) -> int:
+        """Solve figures of lines after ``ahead`` cases as they stand; the place of the first figure."""
+        case_of = np.concatenate(
+            [np.arange(ahead), *(np.full(len(figures), line.case) for line, figures in part)]
+        )
+        inputs: dict[str, Array] = {}
+        for name, base in self.base.items():
+            varies = len(base) > 1 and bool((base != base[0]).any())
+            inputs[name] = base[case_of] if varies else np.asarray(base[0])
+        start = ahead
+        for line, figures in part:
+            value = inputs[line.id]
+            if value.ndim == 0:
+                value = inputs[line.id] = np.full(len(case_of), value)
+            value[start : start + len(figures)] = figures
+            start += len(figures)
+        if all(value.ndim == 0 for value in inputs.values()):
+            inputs = {name: np.full(len(case_of), value) for name, value in inputs.items()}
+        samples = evaluate_samples(self.chain, inputs, self.names, case_of, self.phases)
+        if "heat_flow_service" in samples.results:
+            flow = np.sign(samples.results["heat_flow_service"].values)
+            turned = flow != self.flow_directions[case_of[samples.solved]]
+            samples.mark(turned, "the heat flow turns round", samples.solved)
+        return self.table.takes(samples) + ahead
+
+    def _phases(self) -> dict[str, tuple[str, ...]]:
+        """The phase of every stream in each case, where the file does not state it."""
+        found = {}
+        for state in self.chain.streams.values():
+            if not state.phase:
+                known = [case.solutions[SERVICE].values for case in self.cases]
+                found[state.name] = tuple(stream_phases(state, values)[0][0][0] for values in known)
+        return found
+
+    # -- brackets -----------------------------------------------------------------------------------
+
+    def _wanted(self, number: int) -> list[tuple[_Line, tuple[float, ...]]]:
+        """The figures to be evaluated next, by line; none when every distance is known."""
+        figures: dict[int, set[float]] = {}
+        for bracket in self._open_brackets():
+            place = self.lines.index(bracket.line)
+            figures.setdefault(place, set()).update(self._between(bracket, number))
+        if number < END_ROUNDS:
+            for place, line in enumerate(self.lines):
+                figures.setdefault(place, set()).update(self._before_end(line))
+        wanted = []
+        for place, line in enumerate(self.lines):
+            fresh = figures.get(place, set()) - set(line.figures.tolist())
+            if fresh:
+                wanted.append((line, tuple(sorted(fresh))))
+        return wanted
+
+    def _open_brackets(self) -> list[_Bracket]:
+        """The intervals that may hold the nearest flip of their group and are not known well enough."""
+        groups: dict[Group, list[_Bracket]] = {}
+        for line in self.lines:
+            for bracket in self._first_flips(line):
+                groups.setdefault(self._group(bracket), []).append(bracket)
+        self.best = {}
+        found = []
+        for group, brackets in groups.items():
+            nearest = min(brackets, key=lambda bracket: bracket.most)
+            self.best[group] = nearest
+            found += [
+                bracket
+                for bracket in brackets
+                if (bracket is nearest or bracket.least < nearest.most) and not bracket.is_known
+            ]
+        return found
+
+    def _group(self, bracket: _Bracket) -> Group:
+        """Among what a flip must be the nearest: a criterion in its case, the other kinds in all cases."""
+        kind, name, _ = self.table.keys[bracket.row]
+        if kind == CRITERION:
+            return kind, bracket.line.id, name, self.names[bracket.line.case]
+        return kind, bracket.line.id
+
+    def _end(self, line: _Line) -> int:
+        """How many samples of a line, from the nearest, have an answer without a break."""
+        missing = np.flatnonzero(self.table.missing[line.places])
+        return int(missing[0]) if len(missing) else len(line.places)
+
+    def _first_flips(self, line: _Line) -> Iterator[_Bracket]:
+        """For every verdict the first sample with another one, as far as the samples have an answer."""
+        end = self._end(line)
+        if end == 0:
+            return
+        # A limit that stops leaves no answer: its own flip is the first sample without one.
+        codes = self.table.codes[:, line.places[: end + 1]]
+        base = codes[:, :1]
+        other = (codes >= 0) & (base >= 0) & (codes != base)
+        rows = self._limit_rows()
+        other[rows] &= codes[rows] != IDLE
+        other[rows] &= (base[rows] != IDLE) | (codes[rows] == BROKEN)
+        if codes.shape[1] > end:
+            stops = self._stop_rows()
+            other[:, end] &= stops & (codes[:, end] == BROKEN)
+        for row in np.flatnonzero(other.any(axis=1)):
+            after = int(np.argmax(other[row]))
+            inside, outside = line.figures[after - 1 : after + 1].tolist()
+            yield _Bracket(line, int(row), after - 1, inside, outside, int(codes[row, after]))
+
+    def _limit_rows(self) -> Array:
+        return np.array([key[0] == LIMIT for key in self.table.keys])
+
+    def _stop_rows(self) -> Array:
+        return np.array(
+            [
+                key[0] == LIMIT and self.table.verdict(row).level == "stop"
+                for row, key in enumerate(self.table.keys)
+            ]
+        )
+
+    # -- new figures --------------------------------------------------------------------------------
+
+    def _between(self, bracket: _Bracket, number: int) -> list[float]:
+        """Figures that divide an interval."""
+        line, low, high = bracket.line, bracket.inside, bracket.outside
+        places = self._crossings(bracket)
+        if line.whole:
+            return _whole_between(low, high, places)
+        width = high - low
+        figures = []
+        if not places or number >= INTERPOLATED_ROUNDS:
+            # Nothing continuous decides, or what decides jumps.
+            count = EVENLY_FOR_STATES if line.changes_state else EVENLY_WITHOUT
+            figures = [low + width * part / (count + 1) for part in range(1, count + 1)]
+        parts = FIRST_PARTS if number == 0 else NEXT_PARTS
+        for place in places:
+            figures += [
+                place + sign * part * width
+                for part in (STATE_PARTS if line.changes_state else parts)
+                for sign in (-1.0, 1.0)
+            ]
+            if number:
+                close = CLOSE * min(KNOWN * abs(place), KNOWN_OF_CHANGE * abs(place - line.now))
+                figures += [place - close, place + close]
+                figures += _Printing(line, place, self._given(line)).figures()
+        return [figure for figure in figures if min(low, high) < figure < max(low, high)]
+
+    def _crossings(self, bracket: _Bracket) -> list[float]:
+        """Where the margins of a verdict pass zero within an interval, by what the samples around it tell."""
+        line = bracket.line
+        around = slice(max(bracket.before - AROUND, 0), bracket.before + 2 + AROUND)
+        margins = self.table.margin(bracket.row)[:, line.places[around]]
+        figures = line.figures[around].tolist()
+        at = bracket.before - around.start
+        found = []
+        for margin in margins.tolist():
+            first, second = margin[at], margin[at + 1]
+            if (
+                not (math.isfinite(first) and math.isfinite(second))
+                or first * second > 0.0
+                or first == second
+            ):
+                continue
+            low, high = sorted((bracket.inside, bracket.outside))
+            straight = figures[at] - first * (figures[at + 1] - figures[at]) / (second - first)
+            known = [place for place, figure in enumerate(margin) if math.isfinite(figure)]
+            curved = _interpolated([margin[place] for place in known], [figures[place] for place in known])
+            found.append(curved if low < curved < high else straight)
+        return found
+
+    def _before_end(self, line: _Line) -> list[float]:
+        """Figures between the last sample with an answer and the first one without, if a flip may hide there."""
+        end = self._end(line)
+        if not 0 < end < len(line.places):
+            return []
+        last, first = float(line.figures[end - 1]), float(line.figures[end])
+        if not self._may_hide(line, abs(last - line.now)):
+            return []
+        if line.whole:
+            return _whole_between(last, first, [])
+        count = EVENLY_FOR_STATES if line.changes_state else EVENLY_AT_END
+        return [last + (first - last) * part / (count + 1) for part in range(1, count + 1)]
+
+    def _may_hide(self, line: _Line, distance: float) -> bool:
+        """Whether any verdict has no nearer flip than a distance on this given."""
+        case = self.names[line.case]
+        criteria = [key[1] for key in self.table.keys if key[0] == CRITERION]
+        groups: list[Group] = [(CRITERION, line.id, name, case) for name in criteria]
+        groups += [(kind, line.id) for kind in (LIMIT, METHOD, CONTROLLING)]
+        return any(group not in self.best or self.best[group].most > distance for group in groups)
+
+    # -- what is reported ---------------------------------------------------------------------------
+
+    def _reported(self) -> list[Flip]:
+        """The nearest flip of each group, with its printed figure evaluated."""
+        self._open_brackets()
+        waiting = {
+            group: _Printing(bracket.line, bracket.outside, self._given(bracket.line))
+            for group, bracket in self.best.items()
+        }
+        printed: dict[Group, _Printing] = {}
+        while waiting:
+            self._evaluate_printed(list(waiting.values()))
+            for group, item in list(waiting.items()):
+                if self._holds(self.best[group], item):
+                    printed[group] = waiting.pop(group)
+                else:
+                    item.digits += 1
+        return [self._flip(bracket, printed[group]) for group, bracket in self.best.items()]
+
+    def _evaluate_printed(self, items: list[_Printing]) -> None:
+        wanted: dict[int, set[float]] = {}
+        for item in items:
+            wanted.setdefault(self.lines.index(item.line), set()).update(item.figures())
+        fresh = [
+            (self.lines[place], tuple(sorted(figures - set(self.lines[place].figures.tolist()))))
+            for place, figures in wanted.items()
+        ]
+        self._evaluate([(line, figures) for line, figures in fresh if figures])
+
+    def _holds(self, bracket: _Bracket, item: _Printing) -> bool:
+        """Whether the printed figure flips and the one just inside it does not."""
+        line = bracket.line
+        base, outside, inside = (
+            self.table.codes[bracket.row, line.places[int(np.flatnonzero(line.figures == figure)[0])]]
+            for figure in (line.now, *item.figures())
+        )
+        return bool(outside == bracket.becomes and inside in (base, NO_VERDICT, IDLE))
+
+    def _given(self, line: _Line) -> Given:
+        symbol = line.item.symbol
+        restated = self.chain.calculation.cases.get(self.names[line.case], {})
+        return restated.get(symbol) or self.chain.calculation.givens[symbol]
+
+    def _flip(self, bracket: _Bracket, item: _Printing) -> Flip:
+        line = bracket.line
+        verdict = self.table.verdict(bracket.row)
+        base = int(self.table.codes[bracket.row, line.places[0]])
+        printed, _ = item.figures()
+        moved = abs(printed - line.now)
+        temperature = line.item.kind.scale == "point" or line.item.kind.name == "temperature difference"
+        steps = moved if temperature else (100.0 * moved / abs(line.now) if line.now else math.inf)
+        tolerance = item.given.tolerance or self.chain.calculation.givens[line.item.symbol].tolerance
+        multiples = math.nan
+        if tolerance is not None:
+            stated = read_tolerance(tolerance.text, line.item.kind)
+            width = stated.half_width * (abs(line.now) if stated.relative else 1.0)
+            multiples = moved / width if width else math.nan
+        return Flip(
+            kind=verdict.kind,
+            id=verdict.id,
+            condition=verdict.condition,
+            case=self.names[line.case],
+            level=verdict.level,
+            was=verdict.words[base],
+            becomes=verdict.words[bracket.becomes],
+            input=line.item,
+            now=line.now,
+            at=bracket.outside,
+            printed=float(item.decimals()[0]),
+            printed_inside=float(item.decimals()[1]),
+            unit=item.unit,
+            now_text=item.given.value.text,
+            change=float(item.decimals()[0] - item.now),
+            tolerance=tolerance.text if tolerance is not None else "",
+            tolerances=multiples,
+            steps=steps,
+        )
+
+    def _searched(self) -> Iterator[Searched]:
+        for below, above in zip(self.lines[::2], self.lines[1::2], strict=True):
+            given = self._given(below)
+            quantity = given.value.quantity
+            assert quantity is not None
+            unit = quantity.unit_text
+            (low, low_end), (high, high_end) = (self._last(line, unit) for line in (below, above))
+            yield Searched(below.item, self.names[below.case], unit, low, low_end, high, high_end)
+
+    def _last(self, line: _Line, unit: str) -> tuple[float, str]:
+        """The farthest figure of a line with an answer, in a unit, and what ends the search behind it."""
+        end = self._end(line)
+        figure = in_unit(float(line.figures[end - 1]), unit or "1", line.item.kind.scale == "point")
+        if end == len(line.places):
+            return figure, line.reach.end
+        return figure, self.table.reasons[self.table.missing[line.places[end]]]
+
+
+def _interpolated(margins: list[float], figures: list[float]) -> float:
+    """The figure at which a margin is zero: through all samples, taken as a curve of the margin; NaN without one."""
+    steps = [second - first for first, second in itertools.pairwise(margins)]
+    if not all(step > 0.0 for step in steps) and not all(step < 0.0 for step in steps):
+        return math.nan
+    total = 0.0
+    for place, figure in enumerate(figures):
+        weight = 1.0
+        for other, margin in enumerate(margins):
+            if other != place:
+                weight *= margin / (margin - margins[place])
+        total += weight * figure
+    return total
+
+
+def _whole_between(low: float, high: float, places: list[float]) -> list[float]:
+    """Whole numbers that divide an interval: evenly, and next to where a margin passes zero."""
+    lowest, highest = sorted((low, high))
+    figures = {float(round(lowest + (highest - lowest) * part / (EVENLY_AT_END + 1))) for part in range(1, 8)}
+    for place in places:
+        figures |= {float(math.floor(place)), float(math.ceil(place))}
+    return [figure for figure in figures if lowest < figure < highest]
+
+
+@dataclass(eq=False)
+class _Printing:
+    """A figure beyond which a verdict flips, in the unit of the file, with as many digits as it takes."""
+
+    line: _Line
+    outside: float
+    given: Given
+    digits: int = 0
+
+    @property
+    def unit(self) -> str:
+        assert self.given.value.quantity is not None
+        return self.given.value.quantity.unit_text
+
+    @property
+    def now(self) -> Decimal:
+        """The present figure in its unit, without what the conversion to SI and back adds."""
+        return Context(prec=TYPED_DIGITS).create_decimal(self._in_unit(self.line.now))
+
+    def _in_unit(self, value: float) -> Decimal:
+        return Decimal(repr(in_unit(value, self.unit or "1", self.line.item.kind.scale == "point")))
+
+    def decimals(self) -> tuple[Decimal, Decimal]:
+        """The printed figure, rounded away from the present one, and the one of its last digit before it."""
+        direction = self.line.direction
+        if self.line.whole:
+            outside = Decimal(int(self.outside))
+            return outside, outside - direction
+        exact = self._in_unit(self.outside)
+        change = abs(exact - self.now)
+        last = min(
+            exact.adjusted() - PRINTED_DIGITS + 1 if exact else 0, change.adjusted() - CHANGE_DIGITS + 1
+        )
+        unit = Decimal(1).scaleb(last - self.digits)
+        outside = exact.quantize(unit, rounding=ROUND_CEILING if direction > 0 else ROUND_FLOOR)
+        return outside, outside - direction * unit
+
+    def figures(self) -> tuple[float, float]:
+        """The printed figure and the one just inside it in SI, read as the file would be."""
+        outside, inside = (read_any(f"{figure} {self.unit}".strip()).value for figure in self.decimals())
+        return outside, inside

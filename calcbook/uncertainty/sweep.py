@@ -1,0 +1,118 @@
+"""Sweeps: one or two givens of the base case over a range, every sample in one call of the engine."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from calcbook.calcfile.calculation import Swept
+from calcbook.chain.analysis import ResultFigures
+from calcbook.chain.flips_outcome import LIMIT
+from calcbook.chain.outcome import Result, Solved
+from calcbook.chain.samples import BROKEN, Samples, evaluate_samples
+from calcbook.chain.sweep_outcome import Axis, Sweep, SweptResult
+from calcbook.chain.types import Chain, Input
+from calcbook.faults import Collector, Place, nearest_names, shown
+from calcbook.quantities import Quantity, QuantityFault, as_kind, in_unit
+
+Array = np.ndarray
+ALWAYS = ("U_service", "U_clean")
+
+
+def axes_of(chain: Chain, collector: Collector) -> tuple[Axis, ...]:
+    """The givens of the file's sweep with their figures; what a given cannot be is a fault at its place."""
+    text = chain.calculation.sweep
+    axes = [_axis(chain, swept, collector) for swept in text.swept] if text is not None else []
+    return tuple(axis for axis in axes if axis is not None)
+
+
+def _axis(chain: Chain, swept: Swept, collector: Collector) -> Axis | None:
+    item = chain.inputs[f"given/{swept.symbol}"]
+    first = _figure(item, swept.first, swept.first_place, collector)
+    last = _figure(item, swept.last, swept.last_place, collector)
+    if first is None or last is None:
+        return None
+    figures = np.linspace(first, last, swept.steps).tolist()
+    unit = swept.first.unit_text
+    point = item.kind.scale == "point"
+    return Axis(item, tuple(figures), tuple(in_unit(figure, unit or "1", point) for figure in figures), unit)
+
+
+def _figure(item: Input, quantity: Quantity, place: Place, collector: Collector) -> float | None:
+    try:
+        return as_kind(quantity, item.kind).value
+    except QuantityFault as error:
+        collector.add(
+            error.code,
+            place.part(max(error.column - 1, 0), max(error.end_column - error.column, 1)),
+            f"{error.message} (sweep of {item.symbol})",
+            found=error.found,
+            expected=error.expected,
+            nearest=error.nearest,
+        )
+        return None
+
+
+def sweep_of(solved: Solved, axes: tuple[Axis, ...], collector: Collector) -> Sweep | None:
+    """The sweep over the axes, None without any. A result that does not exist is a fault, result-unknown."""
+    if not axes:
+        return None
+    names = _names(solved, collector)
+    inputs = dict(solved.chain.case_inputs(""))
+    grids = np.meshgrid(*(np.array(axis.figures) for axis in axes), indexing="ij")
+    for axis, grid in zip(axes, grids, strict=True):
+        inputs[axis.input.id] = np.ascontiguousarray(grid.ravel())
+    samples = evaluate_samples(solved.chain, inputs)
+    return Sweep(
+        axes,
+        tuple(_result(solved, solved.base.results[name], samples) for name in names),
+        tuple(samples.reasons[place] for place in samples.missing.tolist()),
+        _outside(samples),
+    )
+
+
+def _names(solved: Solved, collector: Collector) -> list[str]:
+    """The results asked for, else U and those that the acceptance names."""
+    text = solved.chain.calculation.sweep
+    known = solved.base.results
+    if text is None or not text.of:
+        named = [criterion.result for criterion in solved.chain.calculation.acceptance]
+        return [name for name in dict.fromkeys((*ALWAYS, *named)) if name in known]
+    for name, place in text.of:
+        if name not in known:
+            collector.add(
+                "result-unknown",
+                place,
+                f"there is no result `{shown(name)}`",
+                found=shown(name),
+                expected=", ".join(known),
+                nearest=nearest_names(name, known),
+            )
+    return [name for name, _ in text.of if name in known]
+
+
+def _result(solved: Solved, result: Result, samples: Samples) -> SweptResult:
+    """A result at every sample, with the criteria on it whose limit no sample moves."""
+    figures = samples.results.get(result.name) or ResultFigures(np.empty(0), result.kind, "")
+    values = (
+        samples.whole(figures.values, np.nan)
+        if len(samples.solved)
+        else np.full(samples.missing.shape, np.nan)
+    )
+    values = np.where(samples.missing == 0, values, np.nan)
+    stated = zip(solved.base.criteria, solved.chain.calculation.acceptance, strict=False)
+    limits = tuple(
+        (item.id, item.limit)
+        for item, criterion in stated
+        if criterion.result == result.name and not criterion.limit.symbol
+    )
+    return SweptResult(result.name, result.title, result.kind, tuple(values.tolist()), limits)
+
+
+def _outside(samples: Samples) -> tuple[tuple[str, ...], ...]:
+    """The range limits that each sample does not hold, accepted ones left out."""
+    found: list[list[str]] = [[] for _ in samples.missing]
+    for verdict in samples.verdicts.values():
+        if verdict.kind == LIMIT and verdict.level == "range":
+            for place in np.flatnonzero((samples.codes(verdict.key) == BROKEN) & (samples.missing == 0)):
+                found[place].append(f"{verdict.id}, {verdict.condition}")
+    return tuple(tuple(names) for names in found)
