@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from dataclasses import replace
 
-from calcbook.chain.types import Branch, Candidate, Chain, ChainStep, Element, Group, Input
+from calcbook.chain.types import Branch, Candidate, Chain, ChainStep, Element, Gap, Group, Input, Layer
 from calcbook.formulas import parse_expression
 from calcbook.library import vocabulary
 from calcbook.library.cards import Method
@@ -25,13 +25,16 @@ def factor_of(method: Method) -> str:
 
 
 def films_of(chain: Chain) -> tuple[Branch, ...]:
-    """The films whose coefficient a card gives, from the inside to the outside."""
+    """The films and ways across gaps whose coefficient a card gives, from the inside to the outside."""
     return tuple(
-        branch
-        for group in (chain.inner, chain.outer)
-        for branch in group.branches
-        if branch.situation is not None
+        branch for element in chain.elements for branch in _branches(element) if branch.situation is not None
     )
+
+
+def _branches(element: Element) -> tuple[Branch, ...]:
+    if isinstance(element, Group):
+        return element.branches
+    return element.gap.ways if element.gap is not None else ()
 
 
 def with_factors(chain: Chain) -> Chain:
@@ -57,15 +60,39 @@ def _input(name: str, method: Method) -> Input:
 
 
 def _element(element: Element) -> Element:
-    if not isinstance(element, Group):
-        return element
-    branches = tuple(
-        replace(branch, candidates=tuple(_factored(branch, one) for one in branch.candidates))
-        if branch.situation is not None
-        else branch
-        for branch in element.branches
-    )
-    return replace(element, branches=branches)
+    if isinstance(element, Group):
+        return replace(element, branches=tuple(map(_branch, element.branches)))
+    return _gapped(element, element.gap) if element.gap is not None else element
+
+
+def _branch(branch: Branch) -> Branch:
+    if branch.situation is None:
+        return branch
+    return replace(branch, candidates=tuple(_factored(branch, one) for one in branch.candidates))
+
+
+def _gapped(layer: Layer, gap: Gap) -> Layer:
+    """A gap whose joining steps take the coefficients of its methods times their factors."""
+    ways = tuple(map(_branch, gap.ways))
+    added: dict[str, ChainStep] = {}
+    own: set[str] = set()
+    for before, after in zip(gap.ways, ways, strict=True):
+        for one, factored in zip(before.candidates, after.candidates, strict=True):
+            own |= {step.id for step in one.steps}
+            if factored is not one:
+                added[one.coefficient] = factored.steps[-1]
+
+    def joined(step: ChainStep) -> ChainStep:
+        inputs = {symbol: added[name].id if name in added else name for symbol, name in step.inputs.items()}
+        return step if step.id in own else replace(step, inputs=inputs)
+
+    steps: list[ChainStep] = []
+    for step in layer.steps:
+        steps.append(joined(step))
+        if step.id in added:
+            steps.append(added[step.id])
+    coefficients = tuple(added[name].id if name in added else name for name in gap.coefficients)
+    return replace(layer, steps=tuple(steps), gap=replace(gap, ways=ways, coefficients=coefficients))
 
 
 def _factored(branch: Branch, candidate: Candidate) -> Candidate:

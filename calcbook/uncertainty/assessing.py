@@ -101,7 +101,9 @@ def _results(
     if asked is not None and asked.results:
         return tuple(found.values())
     named = [criterion.result for criterion in chain.calculation.acceptance]
-    for name in (*USUAL_RESULTS, *named):
+    fouled = any(isinstance(element, Layer) and element.kind == "fouling" for element in chain.elements)
+    usual = [name for name in USUAL_RESULTS if fouled or name != "U_clean"]
+    for name in (*usual, *named):
         one = measured(chain, name) if name in known else None
         # One figure under two names (U on bare tubes is U on the outside) has one budget.
         if one is not None and all(one.parts != other.parts for other in found.values()):

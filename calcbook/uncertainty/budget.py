@@ -17,6 +17,8 @@ import numpy as np
 Array = np.ndarray
 Correlations = Mapping[frozenset[str], float]
 Model = Callable[[Mapping[str, Array]], Mapping[str, Array]]
+# Contributions below this part of the largest are the rounding of sums that cancel.
+NOISE = 1e-12
 # Between slopes at the value and over one standard uncertainty to either side (method notes, G1).
 NONLINEAR_ABOVE = 0.05
 
@@ -59,9 +61,11 @@ class FirstOrder:
 def first_order(
     figures: Sequence[Figure], slopes: Mapping[str, float], correlations: Correlations | None = None
 ) -> FirstOrder:
-    """Combine standard uncertainties by slopes; a figure without a slope adds nothing and has no line."""
-    acting = [figure for figure in figures if slopes.get(figure.id, 0.0) != 0.0]
-    parts = [slopes[figure.id] * figure.standard for figure in acting]
+    """Combine standard uncertainties by slopes; a figure that adds nothing has no line."""
+    moved = {figure.id: slopes.get(figure.id, 0.0) * figure.standard for figure in figures}
+    least = NOISE * max((abs(part) for part in moved.values()), default=0.0)
+    acting = [figure for figure in figures if moved[figure.id] != 0.0 and not abs(moved[figure.id]) < least]
+    parts = [moved[figure.id] for figure in acting]
     matrix = correlation_matrix([figure.id for figure in acting], correlations or {})
     variance = float(np.asarray(parts) @ matrix @ np.asarray(parts)) if parts else 0.0
     shared = (matrix != np.eye(len(acting))).any(axis=1)

@@ -80,6 +80,8 @@ def watched(chain: Chain, condition: str) -> list[Watched]:
     for element in chain.elements:
         if isinstance(element, Layer):
             found += [Watched(check, condition) for check in element.checks]
+            for way in element.gap.ways if element.gap is not None else ():
+                found += _of_branch(way, condition)
             continue
         for branch in element.branches:
             found += _of_branch(branch, condition)

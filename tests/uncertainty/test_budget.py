@@ -73,8 +73,9 @@ def test_full_correlation_can_cancel() -> None:
 
 
 def test_shares_add_up_and_a_figure_without_slope_has_no_line() -> None:
-    figures = [Plain(name, 1.0, 0.1 * place) for place, name in enumerate("abcdef", 1)]
-    found = first_order(figures, {name: 0.3 * place for place, name in enumerate("abcd", 1)} | {"e": 0.0})
+    figures = [Plain(name, 1.0, 0.1 * place) for place, name in enumerate("abcdefg", 1)]
+    slopes = {name: 0.3 * place for place, name in enumerate("abcd", 1)}
+    found = first_order(figures, slopes | {"e": 0.0, "f": 1e-16})
     assert [line.id for line in found.lines] == list("abcd")
     assert sum(line.share for line in found.lines) == pytest.approx(1.0, rel=1e-12)
 
