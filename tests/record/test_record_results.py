@@ -40,7 +40,16 @@ def numbers_in(content: object) -> Iterator[float]:
 
 
 def test_the_results_file_has_its_parts_in_order(solved: Solved) -> None:
-    assert list(data_of(solved)) == KEYS
+    assert list(data_of(solved)) == KEYS + (["uncertainty"] if solved.uncertainty is not None else [])
+
+
+def test_budgets_stand_in_the_results_file(water_cooler: Solved) -> None:
+    data = data_of(water_cooler)["uncertainty"]
+    assert isinstance(data, dict) and water_cooler.uncertainty is not None
+    for budget in water_cooler.uncertainty.budgets:
+        stated = data["budgets"][budget.result]
+        assert stated["expanded_uncertainty"] == rounded(budget.expanded)
+        assert [line["id"] for line in stated["lines"]] == [row.input.id for row in budget.rows]
 
 
 def test_the_results_file_is_json_without_nan(solved: Solved) -> None:
