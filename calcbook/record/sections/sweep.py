@@ -22,7 +22,7 @@ from calcbook.record.page import Page, counted
 
 # Places of a plot from its left to its right end.
 WIDTH = 60
-LIMIT, SAMPLE, SEVERAL = ":", "o", "+"
+LIMIT, SAMPLE, SEVERAL, AXIS = ":", "o", "+", "|"
 LETTERS = "abcdefghijklmnopqrst"
 
 
@@ -182,7 +182,7 @@ def _plot(page: Page, found: Sweep, result: SweptResult) -> list[Block]:
                 at = _place(value, low, high)
                 places[at] = SEVERAL if at in drawn else (LETTERS[column] if across > 1 else SAMPLE)
                 drawn.add(at)
-        lines.append(f"{label.rjust(widest)} |{''.join(places)}".rstrip())
+        lines.append(f"{label.rjust(widest)} {AXIS}{''.join(places)}".rstrip())
     return [Code("\n".join(lines))]
 
 
