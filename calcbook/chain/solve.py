@@ -272,7 +272,7 @@ class Engine:
 
     def full(self, name: str) -> Array:
         """A figure for every sample."""
-        return np.broadcast_to(np.asarray(self.values[name], dtype=float), (self.size,))
+        return _spread(np.asarray(self.values[name], dtype=float), (self.size,))
 
     def at(self, name: str, samples: Array) -> Array:
         """A figure for some samples; what does not vary stays one number."""
@@ -352,15 +352,31 @@ class Engine:
             plan = self.plans[wanted] = _Plan(wanted, following, tuple(sorted(outside)))
         return plan
 
-    def _stay(self, steps: tuple[ChainStep, ...], moving: tuple[str, ...]) -> set[str]:
+    def _stay(self, steps: tuple[ChainStep, ...], moving: tuple[str, ...]) -> frozenset[str]:
         """Evaluate the steps that do not follow what moves; returns the ids that do."""
-        follows = set(moving)
-        for step in steps:
-            if any(bound in follows for bound in step.inputs.values()):
-                follows.add(step.id)
-            elif step.id not in self.values:
-                run((step,), self.values)
+        follows, still = self._sorted(steps, moving)
+        waiting = [step for step in still if step.id not in self.values]
+        if waiting:
+            run(waiting, self.values)
         return follows
+
+    def _sorted(
+        self, steps: tuple[ChainStep, ...], moving: tuple[str, ...]
+    ) -> tuple[frozenset[str], tuple[ChainStep, ...]]:
+        """The ids that follow what moves, and the steps that do not; the same in every solution of a chain."""
+        key = (id(steps), moving)
+        kept = self.chain.memory.get(key)
+        if kept is None:
+            follows = set(moving)
+            still = []
+            for step in steps:
+                if follows.isdisjoint(step.inputs.values()):
+                    still.append(step)
+                else:
+                    follows.add(step.id)
+            # The steps are kept as well, so that no others can stand where they stood.
+            kept = self.chain.memory[key] = (frozenset(follows), tuple(still), steps)
+        return kept[0], kept[1]
 
     def _evaluated(
         self, plan: _Plan, samples: Array, given: Mapping[str, Array], wants_slopes: bool
@@ -368,15 +384,15 @@ class Engine:
         """The wanted figure of a plan on some samples, and its slopes in what is given."""
         count = (len(samples),)
         if not plan.following:
-            return np.broadcast_to(np.asarray(self.at(plan.wanted, samples), dtype=float), count), {}
+            return _spread(np.asarray(self.at(plan.wanted, samples), dtype=float), count), {}
         values = {name: self.at(name, samples) for name in plan.outside}
         values.update(given)
         slopes: Slopes | None = {name: {name: ONE} for name in given} if wants_slopes else None
         run(plan.following, values, slopes)
         carried = slopes.get(plan.wanted, {}) if slopes is not None else {}
         return (
-            np.broadcast_to(values[plan.wanted], count),
-            {name: np.broadcast_to(slope, count) for name, slope in carried.items()},
+            _spread(values[plan.wanted], count),
+            {name: _spread(slope, count) for name, slope in carried.items()},
         )
 
     # -- one film -----------------------------------------------------------------------------------
@@ -586,7 +602,7 @@ class Engine:
 
         Also the numbers of the moving elements before it, and the resistance of the others.
         """
-        temperature = np.broadcast_to(
+        temperature = _spread(
             np.asarray(self.at(self.chain.inner.bulk, samples), dtype=float), (len(samples),)
         )
         numbers: list[int] = []
@@ -735,6 +751,11 @@ def _given(group: Group, surface: Array | None, flux: Array | None) -> dict[str,
     if surface is None or flux is None:
         return {}
     return {group.surface_temperature: surface, group.flux: flux}
+
+
+def _spread(value: Array, shape: tuple[int, ...]) -> Array:
+    """A figure for every sample; one that is laid out for them already is itself."""
+    return value if value.shape == shape else np.broadcast_to(value, shape)
 
 
 def _relative(residual: Array, scale: Array) -> Array:

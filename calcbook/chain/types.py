@@ -4,6 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field
+from functools import cached_property
+from typing import Any
 
 import numpy as np
 
@@ -326,6 +328,11 @@ class Chain:
     open_figures: tuple[OpenFigure, ...] = ()
     growing: tuple[Growing, ...] = ()
     in_service: Mapping[str, str] = field(default_factory=dict)
+
+    @cached_property
+    def memory(self) -> dict[object, Any]:
+        """What others worked out from this chain's structure alone, so that each is worked out once."""
+        return {}
 
     @property
     def inner(self) -> Group:
