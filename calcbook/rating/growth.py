@@ -128,13 +128,13 @@ def _table(course: _Course) -> OverTime:
     times = np.linspace(0.0, course.until, stated.steps)
     heats = course.at(course.heat_chain, times) if course.heat else None
     heat = _row(heats, course.heat, times) if heats is not None else times * NAN
+    lost, words = _duty_lost(course)
     cleaning = None
     if course.chain.calculation.cleaning is not None:
-        cleaning = _Cleaning(course, float(heat[0]))
+        cleaning = _Cleaning(course, float(heat[0]), lost)
     losses, means = cleaning.over(times, heat) if cleaning is not None else (times * NAN, times * NAN)
     columns = {"heat": heat, "loss": losses, "mean": means}
     rows = _rows(course, times, columns, _outlets(course, heats, times))
-    lost, words = _duty_lost(course)
     return OverTime(
         rows,
         _unit(course),
@@ -209,9 +209,12 @@ def _duty_lost(course: _Course) -> tuple[float, str]:
 
 
 class _Cleaning:
-    """The cleaning interval on the chain's own loss curve. ``first_heat`` is that of the cleaned unit."""
+    """The cleaning interval on the chain's own loss curve.
 
-    def __init__(self, course: _Course, first_heat: float):
+    ``first_heat`` is that of the cleaned unit, ``lost`` the time at which the duty is lost, NaN where it is not.
+    """
+
+    def __init__(self, course: _Course, first_heat: float, lost: float):
         self.course = course
         cleaning = course.chain.calculation.cleaning
         assert cleaning is not None
@@ -226,7 +229,12 @@ class _Cleaning:
             "p_Q": course.figure("price"),
             "C_c": course.figure("cost"),
         }
-        self.summed = Summed(self._loss_at, 0.0, course.until)
+        bends = [
+            lost,
+            *(stated.number(item.needs["t_ind"]) for item in course.chain.growing if "t_ind" in item.needs),
+        ]
+        inside = {time for time in bends if 0.0 < time < course.until}
+        self.summed = Summed(self._loss_at, np.array([0.0, *sorted(inside), course.until]))
 
     def loss(self, heat: Array) -> Array:
         return evaluate(self.loss_relation, {**self.figures, "Q": heat})

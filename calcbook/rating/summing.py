@@ -12,8 +12,9 @@ Array = np.ndarray
 Curve = Callable[[Array], Array]
 # Nodes of one piece: their sum is exact for polynomials up to degree 15, their polynomial is of degree 7.
 NODES, WEIGHTS = legendre.leggauss(8)
-# A piece is cut in two until both halves together agree with its sum within this part of the whole.
-AGREEMENT = 1e-12
+# A piece is cut in two until its polynomial meets the curve at the nodes of both halves within this part of the
+# largest value; the polynomials of the halves then miss by 2^-8 of it, as both are of degree 7.
+AGREEMENT = 1e-8
 MAXIMUM_CUTS = 40
 # Points of one round of a search, and its rounds: 40^-6 of the range, then a straight line.
 POINTS, ROUNDS = 41, 6
@@ -24,34 +25,39 @@ ROOT_AGREEMENT = 1e-14
 class Summed:
     """A curve in pieces of polynomials, with its integral from the first edge to any place.
 
-    Pieces in which the curve bends (where a deposit begins to grow, where a duty is lost) are cut until their sums
-    agree; all open pieces are evaluated in one call. What the curve does not know (NaN) is not known here either.
+    ``edges`` are its ends and the places where it bends, as far as they are known. All pieces that are still to be
+    cut are evaluated in one call. What the curve does not know (NaN) is not known here either.
     """
 
-    def __init__(self, curve: Curve, low: float, high: float):
+    def __init__(self, curve: Curve, edges: Array):
         settled: list[tuple[Array, Array, Array]] = []
-        lows, highs = np.array([low]), np.array([high])
-        sums = _sums(lows, highs, _values(curve, lows, highs))
-        whole = float(np.finfo(float).tiny)
+        lows, highs = np.asarray(edges[:-1], dtype=float), np.asarray(edges[1:], dtype=float)
+        values = _values(curve, lows, highs)
+        largest = float(np.finfo(float).tiny)
         for cut in range(MAXIMUM_CUTS):
+            count, series = len(lows), _series(values)
             middle = 0.5 * (lows + highs)
             lows, highs = np.concatenate([lows, middle]), np.concatenate([middle, highs])
             values = _values(curve, lows, highs)
-            halves = _sums(lows, highs, values)
-            both = halves[: len(sums)] + halves[len(sums) :]
-            whole = max(whole, float(np.abs(both).sum()))
-            # A sum that is not known stays so however it is cut.
-            agreed = ~(np.abs(both - sums) > AGREEMENT * whole) | (cut == MAXIMUM_CUTS - 1)
+            largest = max(largest, float(np.abs(values).max(initial=0.0, where=np.isfinite(values))))
+            # The nodes of both halves on the scale of the whole piece.
+            left, right = (NODES - 1.0) / 2.0, (NODES + 1.0) / 2.0
+            off = np.maximum(
+                np.abs(legendre.legval(left, series) - values[:count]).max(axis=1),
+                np.abs(legendre.legval(right, series) - values[count:]).max(axis=1),
+            )
+            # What is not known stays so however it is cut.
+            agreed = ~(off > AGREEMENT * largest) | (cut == MAXIMUM_CUTS - 1)
             done = np.concatenate([agreed, agreed])
             settled.append((lows[done], highs[done], values[done]))
-            lows, highs, sums = lows[~done], highs[~done], halves[~done]
+            lows, highs, values = lows[~done], highs[~done], values[~done]
             if not len(lows):
                 break
         low_ends, high_ends, found = (np.concatenate(parts) for parts in zip(*settled, strict=True))
         order = np.argsort(low_ends)
         self.low, self.high = low_ends[order], high_ends[order]
         self.series = _series(found[order])
-        pieces = _sums(self.low, self.high, found[order])
+        pieces = 0.5 * (self.high - self.low) * (found[order] @ WEIGHTS)
         self.before = np.concatenate([[0.0], np.cumsum(pieces)])[:-1]
 
     def value(self, places: Array) -> Array:
@@ -76,10 +82,6 @@ def _values(curve: Curve, low: Array, high: Array) -> Array:
     """The curve at the nodes of pieces, one row a piece."""
     places = (0.5 * (low + high))[:, None] + (0.5 * (high - low))[:, None] * NODES[None, :]
     return curve(places.reshape(-1)).reshape(places.shape)
-
-
-def _sums(low: Array, high: Array, values: Array) -> Array:
-    return np.asarray(0.5 * (high - low) * (values @ WEIGHTS))
 
 
 def _series(values: Array) -> Array:

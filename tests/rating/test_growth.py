@@ -101,7 +101,7 @@ def test_sums_of_smooth_and_bent_curves() -> None:
         "rising": (lambda x: -np.expm1(-x / 0.3), []),
     }
     for curve, bends in curves.values():
-        summed = Summed(curve, 0.0, 3.0)
+        summed = Summed(curve, np.array([0.0, *bends, 3.0]))
         for place in (0.1, 0.5, 0.7123, 1.0, 2.9, 3.0):
             expected = quad(curve, 0.0, place, points=bends or None, epsabs=1e-14, epsrel=1e-13)[0]
             assert summed.sum(np.array([place]))[0] == pytest.approx(expected, rel=1e-9, abs=1e-11)
@@ -110,8 +110,14 @@ def test_sums_of_smooth_and_bent_curves() -> None:
             )
 
 
+def test_a_bend_that_nobody_told_of_is_found() -> None:
+    """Cut by cut: forty halvings leave the place of the bend within 3e-12 of the range."""
+    summed = Summed(lambda x: np.maximum(x - 0.7123, 0.0), np.array([0.0, 3.0]))
+    assert summed.sum(np.array([3.0]))[0] == pytest.approx((3.0 - 0.7123) ** 2 / 2, rel=1e-9)
+
+
 def test_a_curve_without_values_has_no_sum() -> None:
-    summed = Summed(lambda x: np.where(x < 1.0, 1.0, np.nan), 0.0, 2.0)
+    summed = Summed(lambda x: np.where(x < 1.0, 1.0, np.nan), np.array([0.0, 2.0]))
     assert math.isnan(summed.sum(np.array([2.0]))[0])
 
 
@@ -221,7 +227,7 @@ def test_the_duty_is_lost_where_the_margin_is_nothing_and_the_heat_is_the_duty(
 def test_words_where_no_duty_is_lost(tmp_path: Path) -> None:
     short = solved(tmp_path, COOLER.replace("until: 24 months, steps: 13", "until: 3 months, steps: 2"))
     assert short.over_time is not None and "to the end of the table" in short.over_time.duty_words
-    small = solved(tmp_path, COOLER.replace("value: 62", "value: 30"))
+    small = solved(tmp_path, COOLER.replace("value: 62", "value: 24"))
     assert small.over_time is not None and "does not carry" in small.over_time.duty_words
 
 
@@ -237,23 +243,23 @@ def least_cost(model: str, cost: float, price: float, cleaning: float) -> float:
         return p * (clean - heat(model)(t))
 
     def excess(t: float) -> float:
-        return loss(t) * (t + cleaning) - cost - quad(loss, 0, t, epsabs=0, epsrel=1e-13)[0]
+        return loss(t) * (t + cleaning) - cost - quad(loss, 0, t, epsrel=1e-10)[0]
 
     return float(brentq(excess, 1.0, 400 * DAY, xtol=1e-6, rtol=1e-14))
 
 
 @pytest.mark.parametrize(("model", "growth"), [("linear", LINEAR), ("asymptotic", ASYMPTOTIC)])
 def test_the_interval_of_least_cost(tmp_path: Path, model: str, growth: str) -> None:
-    found = over(tmp_path, plane(growth, money(3000, 25))).interval
+    found = over(tmp_path, plane(growth, money(1500, 25))).interval
     assert found is not None
-    expected = least_cost(model, 3000.0, 25.0, 2 * DAY)
+    expected = least_cost(model, 1500.0, 25.0, 2 * DAY)
     # 1e-8: the sums agree within 1e-12 and the polynomials of the pieces within 1e-9.
     assert found.interval == pytest.approx(expected, rel=1e-8)
     p = 25.0 / 3.6e9
     assert found.least == pytest.approx(p * (heat(model)(0.0) - heat(model)(expected)), rel=1e-8)
     for end in found.flat:
         lost = quad(lambda t: p * (heat(model)(0.0) - heat(model)(t)), 0, end, epsrel=1e-12)[0]
-        assert (3000 + lost) / (end + 2 * DAY) == pytest.approx(1.05 * found.least, rel=1e-8)
+        assert (1500 + lost) / (end + 2 * DAY) == pytest.approx(1.05 * found.least, rel=1e-8)
 
 
 def test_the_interval_of_least_cost_on_the_curve_of_a_whole_chain(cooler: Solved) -> None:
@@ -304,7 +310,7 @@ def test_the_closed_form_nears_the_chain_as_the_loss_nears_its_law(tmp_path: Pat
         assert found is not None and found.closed_form is not None
         assert found.closed_form.card == "cleaning-interval-asymptotic"
         differences.append(abs(found.closed_form.interval / found.interval - 1))
-    assert differences[0] < 0.02 and differences[1] < differences[0] / 5
+    assert differences[0] < 0.03 and differences[1] < differences[0] / 5
 
 
 def test_loss_against_the_duty_begins_when_it_is_lost(tmp_path: Path) -> None:
@@ -336,7 +342,7 @@ def test_the_record_holds_table_lost_duty_and_interval(cooler: Solved) -> None:
     # The line with values gives the printed loss and mean.
     for line in (line for line in part.splitlines() if re.match(r"\| (loss|mean over)", line)):
         cells = [cell.strip() for cell in line.strip("|").split("|")]
-        expression = cells[2].replace("·", "*").replace("−", "-").replace(" ", "")
+        expression = cells[2].replace("·", "*").replace("−", "-").replace("\u2009", "")
         printed = float(cells[3].split(" ")[0])
         assert eval(expression) == pytest.approx(printed, rel=2e-5)
 
