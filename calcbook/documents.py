@@ -617,7 +617,7 @@ class Key:
 
     ``kind``: prose (needs words), name, quantity, relation, choice, flag (yes/no), date, number,
     mapping, list, node (checked by its reader). ``quantity`` names the vocabulary entry of a quantity.
-    ``of`` describes the mapping, or the items of the list. ``later`` marks what is not yet available.
+    ``of`` describes the mapping, or the items of the list.
     """
 
     name: str
@@ -627,7 +627,6 @@ class Key:
     choices: tuple[str, ...] = ()
     required: bool = False
     of: Description | Callable[[], Description] | None = None
-    later: bool = False
     example: str = ""
 
     def described(self) -> Description | None:
@@ -689,7 +688,7 @@ class Fields:
 def read_mapping(node: Node | None, description: Description, collector: Collector, place: Place) -> Fields:
     """Check a node against a description and return its known keys; faults go to the collector.
 
-    Codes: mapping-expected, key-unknown, comma-starts-key, key-missing, key-not-yet-available,
+    Codes: mapping-expected, key-unknown, comma-starts-key, key-missing,
     value-missing, value-not-text, list-expected, choice-unknown, flag-unreadable.
     """
     if node is None or (isinstance(node, Scalar) and node.is_empty):
@@ -710,13 +709,6 @@ def read_mapping(node: Node | None, description: Description, collector: Collect
         known = description.key(key.text) or description.free
         if known is None:
             _report_unknown(node, key, value, description, collector)
-        elif known.later:
-            collector.add(
-                "key-not-yet-available",
-                key.place,
-                f"`{key.text}` is not yet available in this version",
-                expected="a calculation without it",
-            )
         elif _shape_holds(key, value, known, collector):
             fields.nodes[key.text] = value
             fields.key_places[key.text] = key.place
@@ -855,7 +847,7 @@ def _keys_of(key: Key) -> str:
 
 
 def _key_list(description: Description) -> str:
-    names = [key.name for key in description.keys if not key.later]
+    names = [key.name for key in description.keys]
     if description.free is not None:
         names.append(description.free.meaning)
     return ", ".join(names)

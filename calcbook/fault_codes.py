@@ -24,7 +24,6 @@ CODES: dict[str, str] = {
     "list-expected": "a list is wanted",
     "key-unknown": "a key that this place does not have: see the nearest names",
     "key-missing": "a key that must be there",
-    "key-not-yet-available": "a key that a later version will read",
     "key-conflict": "two keys of which only one can stand",
     "value-missing": "a key without a value",
     "value-not-text": "a list or mapping where a single value is wanted",

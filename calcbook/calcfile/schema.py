@@ -19,17 +19,14 @@ _FIGURE_MEANING = "a symbol of the givens, a number with its unit, or {value: â€
 
 
 def json_schema() -> Schema:
-    """The schema of a calculation file (draft 2020-12): keys, choices and what must be there, with meanings.
-
-    Keys that are not yet available are left out.
-    """
+    """The schema of a calculation file (draft 2020-12): keys, choices and what must be there, with meanings."""
     schema = _mapping(described.FILE)
     return {"$schema": DRAFT, "title": "calculation file", **schema}
 
 
 def _mapping(description: Description, seen: tuple[str, ...] = ()) -> Schema:
     """A mapping with its keys; ``seen`` names the descriptions it stands in, for one that holds itself."""
-    keys = [key for key in description.keys if not key.later]
+    keys = description.keys
     inner = (*seen, description.name)
     schema: Schema = {
         "type": "object",

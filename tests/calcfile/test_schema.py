@@ -4,14 +4,13 @@ from __future__ import annotations
 
 import json
 from collections.abc import Iterator
-from dataclasses import replace
 from pathlib import Path
 
 import pytest
 
 from calcbook.calcfile import descriptions as described
 from calcbook.calcfile.schema import DRAFT, json_schema
-from calcbook.documents import Key, Mapping, Node, Scalar, read_file
+from calcbook.documents import Mapping, Node, Scalar, read_file
 
 CASES = Path(__file__).resolve().parents[1] / "cases"
 GOOD = sorted((CASES / "ok").glob("*.yaml"))
@@ -83,7 +82,6 @@ def test_a_good_file_fits(path: Path) -> None:
         ("mapping-expected", "/givens/d_i: string"),
         ("choice-unknown", "/geometry/shape: no choice"),
         ("list-expected", "/resistances: object"),
-        ("key-not-yet-available", ": unknown sweep"),
         ("value-not-text", "/calculation/title: array"),
         ("verification-incomplete", None),
     ],
@@ -102,16 +100,8 @@ def test_the_schema_is_json_and_names_its_draft() -> None:
     assert schema["$schema"] == DRAFT
 
 
-def test_every_available_key_stands_in_the_schema_with_its_meaning() -> None:
+def test_every_key_stands_in_the_schema_with_its_meaning() -> None:
     properties = json_schema()["properties"]
     assert isinstance(properties, dict)
-    available = {key.name: key.meaning for key in described.FILE.keys if not key.later}
+    available = {key.name: key.meaning for key in described.FILE.keys}
     assert {name: entry["description"] for name, entry in properties.items()} == available
-
-
-def test_a_key_that_is_not_yet_available_is_left_out(monkeypatch: pytest.MonkeyPatch) -> None:
-    later = Key("for later", "what is to come", "node", later=True)
-    monkeypatch.setattr(described, "FILE", replace(described.FILE, keys=(*described.FILE.keys, later)))
-    properties = json_schema()["properties"]
-    assert isinstance(properties, dict)
-    assert "for later" not in properties and "calculation" in properties
