@@ -50,6 +50,8 @@ START = {
     "fin height": ("L_f", "6 mm", "fin height"),
     "fin thickness": ("t_f", "0.4 mm", "fin thickness"),
     "fin pitch": ("p_f", "3 mm", "fin pitch"),
+    "gap": ("s_g", "20 mm", "distance of the two walls"),
+    "angle": ("theta", "45 deg", "tilt from the horizontal"),
     "bundle diameter": ("D_b", "0.5 m", "diameter of the bundle"),
 }
 # A shell of the size of its tubes stands in for the annulus; a shell with baffles is a larger one.
@@ -57,6 +59,8 @@ SHELL = ("D_shell", "0.5 m", "inside diameter of the shell")
 FIN_FIGURES = ("fin height", "fin thickness", "fin pitch")
 FINS = """
      fins: {shape: annular, height: L_f, thickness: t_f, pitch: p_f, conductivity: {value: 200 W/(m K), source: tbd}}"""
+# The side that a situation of an enclosure acts on.
+GAP = "gap"
 DIMENSIONS = {
     "tube": ("inside diameter", "outside diameter", "length"),
     "sphere": ("inside diameter", "outside diameter"),
@@ -74,6 +78,15 @@ def starting_file(library: Library, name: str, shape: str | None = None) -> str:
     if shape not in situation.shapes:
         raise ValueError(f"{name} fits {' or '.join(situation.shapes)}, not {shape}")
     side = situation.surfaces[0]
+    if side == GAP:
+        parts = [
+            *_head(situation),
+            *_givens_of_gap(situation, shape),
+            *_geometry(situation, shape),
+            *_resistances_of_gap(situation, shape),
+            *_tail(),
+        ]
+        return "\n".join(parts) + "\n"
     return (
         "\n".join(
             [
@@ -160,6 +173,37 @@ def _givens(situation: Situation, shape: str) -> list[str]:
     return lines
 
 
+def _givens_of_gap(situation: Situation, shape: str) -> list[str]:
+    lines = ["givens:                             # number with unit, as the source writes it"]
+    for name in _wanted(situation, shape):
+        symbol, value, meaning = START[name]
+        lines.append(f"  {symbol}: {{value: {value}, is: {meaning}, source: tbd}}")
+    return [
+        *lines,
+        "  T_in: {value: 60 degC, is: temperature on the inside, source: tbd, tolerance: 1 K}",
+        "  T_out: {value: 20 degC, is: temperature on the outside, source: tbd, tolerance: 1 K}",
+        "  h_in: {value: 10 W/(m^2 K), is: film coefficient on the inside, source: tbd, tolerance: 20 %}",
+        "  h_out: {value: 10 W/(m^2 K), is: film coefficient on the outside, source: tbd, tolerance: 20 %}",
+        "  p: {value: 1.013 bara, is: pressure in the gap, source: tbd}",
+        "  eps: {value: 0.9, is: emissivity of both sides of the gap, source: tbd}",
+        "",
+    ]
+
+
+def _resistances_of_gap(situation: Situation, shape: str) -> list[str]:
+    wall = "kind: wall, thickness: {value: 2 mm, source: tbd}, material: stainless-316-kaschnitz-2017}"
+    return [
+        "resistances:                        # in order, from the inside to the outside",
+        "  - {name: inner film, kind: film, coefficient: h_in, on: inside, temperature: T_in}",
+        f"  - {{name: inner wall, {wall}",
+        f"  - {{name: gap, kind: gap, situation: {situation.id}{_with(situation, shape)}, fluid: air, pressure: p,",
+        "     thickness: s_g, inner emissivity: eps, outer emissivity: eps}",
+        f"  - {{name: outer wall, {wall}",
+        "  - {name: outer film, kind: film, coefficient: h_out, on: outside, temperature: T_out}",
+        "",
+    ]
+
+
 def _asks_for_flow(situation: Situation) -> bool:
     """Whether the situation forms its groups with the speed of the stream."""
     return situation.flow_area is not None or any("v" in group.relation.symbols for group in situation.groups)
@@ -233,6 +277,7 @@ def _with(situation: Situation, shape: str) -> str:
     given = (
         *DIMENSIONS[shape],
         "tubes in parallel",
+        GAP,
         *FIN_FIGURES,
         *(("area", "perimeter") if shape == "plane" else ()),
     )

@@ -15,6 +15,7 @@ from dataclasses import dataclass
 from calcbook.calcfile.calculation import Value
 from calcbook.chain.checks import apart
 from calcbook.chain.circuit import branch_coefficient
+from calcbook.chain.gaps import gaps
 from calcbook.chain.outcome import CheckResult
 from calcbook.chain.solve import Solution
 from calcbook.chain.types import SERVICE, Branch, Chain, Group, Layer
@@ -79,6 +80,10 @@ def _all_figures(chain: Chain, solution: Solution) -> Iterator[Figure]:
     for wall in walls:
         yield Figure(wall.owner, wall.thickness_band, wall.thickness)
         yield Figure(wall.owner, wall.conductivity_band, wall.conductivity)
+    terms = {term.name: term for term in chain.calculation.resistances}
+    for layer, _ in gaps(chain):
+        stated = terms[layer.name].values.get("thickness")
+        yield Figure(layer.name, "gap between two walls", _stated(solution, stated, layer.name, "thickness"))
     for group in (chain.inner, chain.outer):
         for branch in group.branches:
             if branch.kind != "radiation":
@@ -94,7 +99,7 @@ def _all_figures(chain: Chain, solution: Solution) -> Iterator[Figure]:
                 yield Figure(element.name, "fouling allowance", solution.number(element.resistance))
     if "heat flux" in chain.results:
         yield Figure("U", "heat flux", abs(solution.number(chain.results["heat flux"])))
-    if not any(wall.insulates for wall in walls):
+    if not any(wall.insulates for wall in walls) and not gaps(chain):
         pair = frozenset(_side(chain, solution, group) for group in (chain.inner, chain.outer))
         yield Figure(
             "U", PAIRS.get(pair, "U of any uninsulated surface"), solution.number(chain.results["U"])

@@ -273,6 +273,13 @@ def test_phases_are_checked_on_the_side_where_they_would_change(tmp_path: Path) 
     assert checks["gas / wall phase / freezes"].value < checks["gas / wall phase / boils"].value
 
 
+def test_a_distance_in_another_unit_is_told(tmp_path: Path) -> None:
+    solved = analysed(tmp_path, window(UPRIGHT, s="16 m"))
+    assert any(check.id == "gas / band / gap between two walls" for check in solved.base.checks)
+    sound = analysed(tmp_path, window(UPRIGHT))
+    assert not any(" / band / " in check.id for check in sound.base.checks)
+
+
 # --- faults -------------------------------------------------------------------------------------------
 
 
