@@ -9,6 +9,8 @@ from pathlib import Path
 import numpy as np
 import pytest
 from fluids import friction
+from fluids.geometry import AirCooledExchanger
+from ht.air_cooler import dP_ESDU_high_fin
 from small_calculations import COOLER, OIL, chain_of, givens
 
 from calcbook.chain import pressure
@@ -261,6 +263,63 @@ def test_a_deposit_that_narrows_acts_on_the_pressure_drop_in_service(tmp_path: P
 def test_a_deposit_that_does_not_narrow_leaves_the_flow_alone(tmp_path: Path) -> None:
     chain = chain_of(tmp_path, tube(deposit=DEPOSIT.format("0.3", "no")))
     assert state(dropped(chain, SERVICE))[3] == state(dropped(chain, CLEAN))[3]
+
+
+# --- liquid and vapour together, finned banks ----------------------------------------------------------
+
+
+@pytest.mark.parametrize(
+    ("situation", "phase", "surface"),
+    [("condensing-inside-tube", "gas", "20 degC"), ("boiling-inside-tube", "liquid", "60 degC")],
+)
+def test_liquid_and_vapour_in_two_passes_against_fluids(
+    tmp_path: Path, situation: str, phase: str, surface: str
+) -> None:
+    """R134a at 40 degC: Blasius factors of fluids for each phase alone, over both passes; U does not know it."""
+    body = (
+        givens(d_i="10 mm", d_o="12 mm", L="3 m", N="40", N_p="2", m="0.5 kg/s", p="10.166 bara", T_o=surface)
+        + f"""\
+streams:
+  two: {{fluid: R134a, phase: {phase}, temperature: saturation, pressure: p, flow: m}}
+geometry: {{shape: tube, inside diameter: d_i, outside diameter: d_o, length: L, tubes: N, passes: N_p}}
+resistances:
+  - {{name: film, kind: film, stream: two, situation: {situation}, with: {{x: 0.4, position: horizontal}}}}
+  - {{name: wall, kind: wall, conductivity: {{value: 300 W/(m K), source: test}}}}
+  - name: outer film
+    kind: film
+    coefficient: {{value: 900 W/(m^2 K), source: test}}
+    temperature: T_o
+report: {{U on: outside}}
+"""
+    )
+    solution = dropped(chain_of(tmp_path, body))
+    flux = 0.5 / (20 * math.pi / 4 * 0.01**2)
+    drop = {}
+    for name, place in (("liquid", "saturated liquid"), ("vapour", "saturated vapour")):
+        rho, mu = (solution.number(f"film/{place}/{figure}") for figure in ("density", "viscosity"))
+        assert flux * 0.01 / mu > 4e3
+        drop[name] = friction.Blasius(flux * 0.01 / mu) * 6.0 / 0.01 * flux**2 / (2 * rho)
+    whole = (drop["liquid"] + 2 * (drop["vapour"] - drop["liquid"]) * 0.4) * 0.6 ** (1 / 3)
+    expected = whole + drop["vapour"] * 0.4**3
+    assert solution.number("film/mueller-steinhagen-heck-1986/dp") == pytest.approx(expected, rel=1e-12)
+
+
+def test_a_finned_bank_against_ht() -> None:
+    """The example bundle, with the areas of ht's own air cooler."""
+    solution = solve_file(CALCS / "ab-901.yaml").base.solutions[SERVICE]
+    cooler = AirCooledExchanger(
+        tube_rows=4, tube_passes=4, tubes_per_row=42, tube_length=8.96, tube_diameter=0.0254,
+        fin_thickness=0.00041, fin_density=1 / 0.00254, fin_height=0.01588, pitch_normal=0.0635,
+        pitch_parallel=0.055, corbels=True,
+    )  # fmt: skip
+    rho, mu = solution.number("stream air/density"), solution.number("stream air/viscosity")
+    free = 1 - (0.0254 + 2 * 0.01588 * 0.00041 / 0.00254) / 0.0635
+    expected = dP_ESDU_high_fin(
+        m=82.0, A_min=free * 24.2, A_increase=cooler.A_increase, flow_area_contraction_ratio=free,
+        tube_diameter=0.0254, pitch_parallel=0.055, pitch_normal=0.0635, tube_rows=4, rho=rho, mu=mu,
+    )  # fmt: skip
+    # 1e-3: ht counts the tips of the fins of a whole tube, which ends with a part of a pitch.
+    assert solution.number("air film/esdu-86022-dp/dp") == pytest.approx(expected, rel=1e-3)
 
 
 # --- annulus, ducts, plates, shell ------------------------------------------------------------------
