@@ -326,7 +326,7 @@ class _Reader:
                 scalar.place,
                 "a history stands beside the calculation file",
                 found=shown(scalar.text),
-                expected="the bare name of a CSV file, such as wc-105-history.csv",
+                expected="the bare name of a CSV file, such as wc-111-history.csv",
             )
             return None
         wanted = {" ".join(head.text.split()): head.place}

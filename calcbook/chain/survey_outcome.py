@@ -23,7 +23,9 @@ class RuleCount:
 
 @dataclass(frozen=True, slots=True)
 class CycleRow:
-    """The time from one cleaning to the next: its rows, and the offset that was taken for zero, m² K/W.
+    """The time from one cleaning to the next: its rows, and how far off zero they start, m² K/W.
+
+    The offset is the mean resistance of the rows that anchor zero, less what the model has grown there.
 
     ``scatter`` and ``systematic`` are standard uncertainties of the offset; NaN without rows to anchor on.
     """

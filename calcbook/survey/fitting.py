@@ -16,12 +16,12 @@ from calcbook.quantities import unit_factor
 from calcbook.survey.growth import RESISTANCE, TIME, GrowthModel
 
 Array = np.ndarray
-# Rows on which the best start is looked for.
-START_ROWS = 1000
+# Rows on which the best start is looked for, and passes that each start is given.
+START_ROWS, START_PASSES = 1000, 12
 PASSES = 200
 # Relative change of every parameter at which the fit stands still; what rounding does to a sum of squares.
 STILL, ROUNDING = 1e-11, 1e-12
-LEAST_DAMPING = 1e-12
+FIRST_DAMPING, LEAST_DAMPING = 1e-3, 1e-12
 # Beyond this the parameters cannot be told from each other by the data.
 WORST_CONDITION = 1e8
 # Neighbouring rows more alike than this say nothing about the scatter of their mean.
@@ -88,18 +88,18 @@ class Fit:
         """
         part = self.data.part(places)
         slopes = part.anchored(self.model.value_and_slopes(self.parameters, part.times)[1])
-        return np.linalg.lstsq(slopes.T, part.anchored(errors).T, rcond=None)[0]
+        scale = np.linalg.norm(slopes, axis=1)
+        scale = np.where(scale > 0.0, scale, 1.0)
+        return np.linalg.lstsq((slopes.T / scale), part.anchored(errors).T, rcond=None)[0] / scale[:, None]
 
 
 def fit(model: GrowthModel, data: Data) -> Fit:
     """The parameters with the least sum of squared residuals; those that zero takes away are held at nothing."""
     part = data.part(np.unique(np.concatenate([spread(len(data), START_ROWS), _some_zero_rows(data)])))
     model = _without_lost(model, part)
-    searched = [_search(model, part, start) for start in _starts(model, part)]
+    searched = [_search(model, part, start, START_PASSES) for start in _starts(model, part)]
     best = min(searched, key=lambda found: found.total)
-    if len(part) < len(data):
-        best = _search(model, data, best.parameters, LEAST_DAMPING)
-    return _finished(model, data, best)
+    return _finished(model, data, _search(model, data, best.parameters, PASSES, best.damping))
 
 
 def spread(count: int, most: int) -> Array:
@@ -150,16 +150,19 @@ def _starts(model: GrowthModel, data: Data) -> list[Array]:
 
 @dataclass(frozen=True)
 class _Search:
-    """Where a search came to: parameters, sum of squares, whether it rests, residuals, anchored slopes."""
+    """Where a search came to: parameters, sum of squares, whether it rests, and what the next step needs."""
 
     parameters: Array
     total: float
     rests: bool
     residuals: Array
     slopes: Array
+    damping: float = np.inf
 
 
-def _search(model: GrowthModel, data: Data, start: Array, damping: float = 1e-3) -> _Search:
+def _search(
+    model: GrowthModel, data: Data, start: Array, passes: int, damping: float = FIRST_DAMPING
+) -> _Search:
     """Gauss and Newton's steps, damped after Levenberg where they do not lead down, until they stand still."""
     wanted = data.anchored(data.values)
     # A sum may rise by its own rounding.
@@ -167,7 +170,7 @@ def _search(model: GrowthModel, data: Data, start: Array, damping: float = 1e-3)
     scale = np.abs(start)
     with np.errstate(all="ignore"):
         here = _evaluated(model, data, wanted, start)
-        for _ in range(PASSES if np.isfinite(here.total) else 0):
+        for _ in range(passes if np.isfinite(here.total) else 0):
             normal = here.slopes @ here.slopes.T * np.outer(scale, scale)
             right = here.slopes @ here.residuals * scale
             diagonal = np.diag(np.maximum(np.diag(normal), 1e-12 * max(float(np.trace(normal)), 1e-300)))
@@ -182,8 +185,8 @@ def _search(model: GrowthModel, data: Data, start: Array, damping: float = 1e-3)
             else:
                 damping *= 5.0
             if small:
-                return replace(here, rests=True)
-    return here
+                return replace(here, rests=True, damping=damping)
+    return replace(here, damping=damping)
 
 
 def _evaluated(model: GrowthModel, data: Data, wanted: Array, parameters: Array) -> _Search:

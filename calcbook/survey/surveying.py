@@ -319,6 +319,7 @@ class _Survey:
             if parts
             else np.zeros((0, len(self.starts)))
         )
+        grown = found.data.zero_means(found.model.value(found.parameters, found.data.times))
         rows = []
         for number, cleaning in enumerate(self.survey.cleanings):
             own = kept.cycles == number
@@ -334,7 +335,7 @@ class _Survey:
                     anchors,
                     float((kept.times[zero] - cleaning.at).max()) if known else math.nan,
                     float(since.max()) if len(since) else math.nan,
-                    float(kept.found.resistance[zero].mean()) if known else math.nan,
+                    float(kept.found.resistance[zero].mean() - grown[number]) if known else math.nan,
                     found.deviation
                     * math.sqrt((1.0 + found.correlation) / (1.0 - found.correlation) / anchors)
                     if known

@@ -3,8 +3,8 @@
 Run with `python tests/benchmarks/survey_rows.py [rows]`. Both sides start from the texts of the columns, apply
 the same rules, take properties from the same curves, close the wall temperature to rounding, anchor zero and
 fit the asymptotic model by Gauss and Newton's steps. The engine gives bounds and a plot besides. Prints
-seconds of the processor (least of three runs), the ratios engine / by hand, the differences of the fit, and the
-memory at its highest.
+seconds of the processor (least of three runs), the ratios engine / by hand, the differences of the fit, and
+the memory at its highest.
 """
 
 from __future__ import annotations

@@ -1,7 +1,7 @@
 """A plant history made up: one water cooler whose deposit grows in a known way, measured by sensors that err.
 
 Nothing here comes from calcbook: logarithmic means, films and water are written out again. Run as a script it
-writes the history of the example: `python tests/survey/history.py calcs/wc-105-history.csv`. Larkmoor Works and
+writes the history of the example: `python tests/survey/history.py calcs/wc-111-history.csv`. Larkmoor Works and
 its cooler are invented.
 
 The unit: hot water in the tubes, cooling water in counterflow outside, whose film coefficient follows the power
@@ -183,8 +183,8 @@ def _wandering(draw: np.random.Generator, rows: int) -> Array:
     return wandering
 
 
-HEADS = {"t": "time", "T_hi": "TI-1051", "T_ho": "TI-1052", "T_ci": "TI-1053", "T_co": "TI-1054"}
-HEADS |= {"m_hot": "FI-1051", "m_cold": "FI-1052"}
+HEADS = {"t": "time", "T_hi": "TI-1111", "T_ho": "TI-1112", "T_ci": "TI-1113", "T_co": "TI-1114"}
+HEADS |= {"m_hot": "FI-1111", "m_cold": "FI-1112"}
 
 
 def cells(shown: dict[str, Array]) -> list[list[str]]:

@@ -55,12 +55,12 @@ survey:
   source: test
   time: {{column: time}}
   columns:
-    T_hi:   {{column: TI-1051, unit: degC, range: 40 degC .. 110 degC, {DRIFT}, source: test}}
-    T_ho:   {{column: TI-1052, unit: degC, range: 20 degC .. 110 degC, {DRIFT}, source: test}}
-    T_ci:   {{column: TI-1053, unit: degF, range: 32 degF .. 122 degF, {DRIFT}, source: test}}
-    T_co:   {{column: TI-1054, unit: degF, range: 32 degF .. 176 degF, {DRIFT}, source: test}}
-    m_hot:  {{column: FI-1051, unit: kg/s, range: 2 kg/s .. 30 kg/s, {FLOW_DRIFT}, source: test}}
-    m_cold: {{column: FI-1052, unit: t/h, range: 7 t/h .. 110 t/h, {FLOW_DRIFT}, source: test}}
+    T_hi:   {{column: TI-1111, unit: degC, range: 40 degC .. 110 degC, {DRIFT}, source: test}}
+    T_ho:   {{column: TI-1112, unit: degC, range: 20 degC .. 110 degC, {DRIFT}, source: test}}
+    T_ci:   {{column: TI-1113, unit: degF, range: 32 degF .. 122 degF, {DRIFT}, source: test}}
+    T_co:   {{column: TI-1114, unit: degF, range: 32 degF .. 176 degF, {DRIFT}, source: test}}
+    m_hot:  {{column: FI-1111, unit: kg/s, range: 2 kg/s .. 30 kg/s, {FLOW_DRIFT}, source: test}}
+    m_cold: {{column: FI-1112, unit: t/h, range: 7 t/h .. 110 t/h, {FLOW_DRIFT}, source: test}}
   heat loss: {{value: {100 * STATED["loss"]:g} %, tolerance: {100 * STATED["loss tolerance"]:g} %, source: test}}
   rules: {{closure: 8 %, steady state: 8 K, flow ratio: 0.6 .. 1.4, gap: 5 days, source: test}}
   cleanings:

@@ -26,9 +26,10 @@ def test_the_parameters_of_a_history_without_errors_come_back(solved: Solved) ->
     truth = Truth(errors={"loss": STATED["loss"]})
     outcome = surveyed(solved, truth, 0, noise=0.0)
     for name, figure in true_figures(truth).items():
-        # Left between the two programs: 0.07 % of the water's conductivity; the wall temperature of the fouled
-        # and of the clean unit in the film's wall factor (E5 takes the clean one); cells of two decimals.
-        assert outcome.figure(name).value == pytest.approx(figure, rel=3e-3)
+        # Left between the two programs: the clean coefficient takes the wall temperature of the clean unit, the
+        # history that of the fouled one (0.3 % by the wall factor of the film); 0.07 % of the water's
+        # conductivity; cells of two decimals (0.1 % of tau).
+        assert outcome.figure(name).value == pytest.approx(figure, rel=6e-3)
 
 
 def test_95_per_cent_bounds_cover_the_truth_in_at_least_90_of_100_histories(solved: Solved) -> None:

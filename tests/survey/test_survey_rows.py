@@ -140,8 +140,8 @@ def test_units_of_a_column_change_its_text_and_nothing_else(tmp_path: Path, whol
     for number, row in enumerate(rows):
         row[3], row[4] = (f"{shown[name][number] + 273.15:.12f}" for name in ("T_ci", "T_co"))
         row[6] = f"{shown['m_cold'][number] * 3600:.9f}"
-    survey = SPOILED_SURVEY.replace("TI-1053, unit: degF, range: 32 degF .. 122 degF", "TI-1053, unit: K")
-    survey = survey.replace("TI-1054, unit: degF, range: 32 degF .. 176 degF", "TI-1054, unit: K")
+    survey = SPOILED_SURVEY.replace("TI-1113, unit: degF, range: 32 degF .. 122 degF", "TI-1113, unit: K")
+    survey = survey.replace("TI-1114, unit: degF, range: 32 degF .. 176 degF", "TI-1114, unit: K")
     survey = survey.replace("unit: t/h, range: 7 t/h .. 110 t/h", "unit: kg/h")
     plain = outcome_of(tmp_path, rows, survey)
     # The mixed texts have two decimals in degF and t/h: 0.003 K and 0.01 % in a row, less in the fit.

@@ -75,9 +75,10 @@ def _gaps(outcome: SurveyOutcome) -> list[Block]:
 
 def _cycles(outcome: SurveyOutcome, page: Page) -> list[Block]:
     words = (
-        f"Zero is anchored after each cleaning: the mean resistance of the rows named is the offset on {page.basis}"
-        " that is taken from every row up to the next cleaning, and the fit takes the mean of the model at the"
-        " same times from itself. What a cleaning leaves behind is in the offset, not in the fit."
+        "Zero is anchored after each cleaning: the mean resistance of the rows named is taken from every row up to"
+        " the next cleaning, and the fit takes the mean of the model at the same times from itself. The offset"
+        f" on {page.basis} is that mean less what the model has grown there: what is wrong in all rows alike, and"
+        " what the cleaning left behind. The fit does not contain it."
     )
     columns = (
         "Cleaning",

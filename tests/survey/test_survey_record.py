@@ -1,0 +1,182 @@
+"""What a survey leaves: its part of the record and of the results file, the digest, and a link to its allowance."""
+
+from __future__ import annotations
+
+import json
+import re
+from pathlib import Path
+
+import pytest
+from history import Truth, cells, drawn, history
+from survey_calculations import COOLER, SURVEY, solved_survey, write_history
+
+from calcbook.interface import read, record_text, solve, solve_file
+from calcbook.quantities import read_any
+from calcbook.record import digest_of
+from calcbook.record.results import results_data
+from calcbook.record.software import software_of
+
+TRUTH = Truth(errors=drawn(3))
+TAKING = COOLER.replace("number: T-105", "number: T-106").replace(
+    "  R_fo:   {value: 0.00035 m^2 K/W, is: allowance so far, source: test}\n",
+    "  R_fo: {from: {calculation: T-105, result: allowance_proposed}, is: allowance of the survey}\n",
+)
+
+
+@pytest.fixture(scope="module")
+def rows() -> list[list[str]]:
+    return cells(history(TRUTH, 3))
+
+
+def section(text: str) -> str:
+    found = re.search(r"^### Survey of plant data\n(.*?)^## ", text, re.MULTILINE | re.DOTALL)
+    assert found is not None
+    return found.group(1)
+
+
+def test_the_record_has_the_survey_among_its_cases(tmp_path: Path, rows: list[list[str]]) -> None:
+    solved = solved_survey(tmp_path, rows)
+    outcome = solved.survey
+    assert outcome is not None
+    text = record_text(solved)
+    part = section(text)
+    assert text.index("## 12. Cases") < text.index("### Survey of plant data") < text.index("## 13.")
+    assert (
+        f"{outcome.rows} rows = {sum(rule.count for rule in outcome.rules)} rejected + {outcome.kept} kept"
+        in part
+    )
+    for rule in outcome.rules:
+        assert f"| {rule.id} |" in part
+    for name in ("allowance_proposed", "allowance_fitted", "allowance_lower", "allowance_upper"):
+        assert f"| {name} |" in part
+    plot = part.split("```")[1].strip("\n").split("\n")
+    assert len(plot) == 17
+    assert max(len(line) for line in plot) <= 8 + 72
+    # Both cleanings stand under the plot, and the fit in every column that has rows.
+    assert plot[15].count("|") == 2
+    assert sum(line.count("*") + line.count("-") for line in plot[:15]) >= 72
+
+
+def test_the_results_file_has_counts_bounds_and_the_named_results(
+    tmp_path: Path, rows: list[list[str]]
+) -> None:
+    solved = solved_survey(tmp_path, rows)
+    digest = digest_of(solved)
+    data = json.loads(json.dumps(results_data(solved, digest, software_of(digest)), allow_nan=False))
+    survey = data["survey"]
+    assert survey["rows"] == len(rows)
+    assert survey["rows"] == survey["kept"] + sum(rule["count"] for rule in survey["rules"])
+    figures = {one["id"]: one for one in survey["figures"]}
+    assert figures["fitted tau"]["lower"] < figures["fitted tau"]["value"] < figures["fitted tau"]["upper"]
+    assert data["results"]["allowance_fitted"]["value"] == figures["allowance_fitted"]["value"]
+    assert data["results"]["allowance_proposed"]["unit"] == "m^2 K/W"
+
+
+def test_the_digest_binds_the_columns_that_are_used(tmp_path: Path, rows: list[list[str]]) -> None:
+    before = digest_of(solved_survey(tmp_path, rows))
+    again = digest_of(solved_survey(tmp_path, [[f" {cell} " for cell in row] for row in rows]))
+    assert again == before
+    changed = [list(row) for row in rows]
+    changed[200][1] = f"{float(changed[200][1]) + 0.01:.2f}"
+    after = digest_of(solved_survey(tmp_path, changed))
+    assert after.meaning != before.meaning
+    assert after.cards == before.cards
+
+
+def test_the_digest_binds_the_cards_of_the_survey(tmp_path: Path, rows: list[list[str]]) -> None:
+    solved = solved_survey(tmp_path, rows)
+    assert {"method kern-seaton-1959", "method fouling-from-plant-data"} <= set(solved.cards)
+    assert "kern-seaton-1959 / 1" in record_text(solved)
+
+
+def test_two_runs_give_the_same_record(tmp_path: Path, rows: list[list[str]]) -> None:
+    assert record_text(solved_survey(tmp_path, rows)) == record_text(solved_survey(tmp_path, rows))
+
+
+def test_another_calculation_takes_the_proposed_allowance(tmp_path: Path, rows: list[list[str]]) -> None:
+    proposed = solved_survey(tmp_path, rows).base.results["allowance_proposed"].value
+    (tmp_path / "taking.yaml").write_text(TAKING, encoding="utf-8")
+    taken = solve_file(tmp_path / "taking.yaml")
+    given = taken.chain.calculation.givens["R_fo"]
+    assert read_any(given.value.text).value == pytest.approx(proposed, rel=1e-9)
+    assert [item.kind for item in taken.open_items] == ["link"]
+
+
+def test_a_proposal_beyond_the_rows_is_a_caution(tmp_path: Path, rows: list[list[str]]) -> None:
+    within = solved_survey(tmp_path, rows)
+    # The longest time since a cleaning is 205 days: 9 months are within 1.5 of it, 11 months are not.
+    beyond = solved_survey(tmp_path, rows, SURVEY.replace("after: 9 months", "after: 11 months"))
+    states = [
+        next(check for check in one.base.checks if check.id == "survey / extrapolation")
+        for one in (within, beyond)
+    ]
+    assert [(check.level, check.state) for check in states] == [("caution", "within"), ("caution", "outside")]
+    assert beyond.open_items == ()
+
+
+def test_a_survey_without_sources_has_open_items(tmp_path: Path, rows: list[list[str]]) -> None:
+    bare = SURVEY.replace(", source: test}", "}").replace("  source: test\n", "")
+    items = {item.id for item in solved_survey(tmp_path, rows, bare).open_items}
+    assert {
+        "survey/file/source",
+        "survey/rules/source",
+        "survey/zero/source",
+        "survey/propose/source",
+        "survey/heat loss/source",
+        "survey/columns, T_hi/source",
+        "survey/cleaning 2025-02-03 06:00/source",
+    } <= items
+
+
+def test_a_deposit_that_shrinks_is_an_open_item(tmp_path: Path) -> None:
+    truth = Truth(model="linear", rate=-2e-12, errors={"loss": 0.01})
+    solved = solved_survey(
+        tmp_path, cells(history(truth, 3)), SURVEY.replace("kern-seaton-1959", "fouling-linear")
+    )
+    assert "survey / fouling-linear / growth" in {item.id for item in solved.open_items}
+
+
+def test_rows_that_do_not_bend_are_an_open_item_of_the_asymptotic_model(tmp_path: Path) -> None:
+    truth = Truth(model="linear", rate=3e-4 / (600 * 86400.0), errors={"loss": 0.01})
+    solved = solved_survey(tmp_path, cells(history(truth, 5)))
+    assert "survey/fit" in {item.id for item in solved.open_items}
+
+
+def test_the_other_growth_models_come_back_through_the_whole_chain(tmp_path: Path) -> None:
+    for card, truth, figures in (
+        ("fouling-linear", Truth(model="linear", errors={"loss": 0.01}), ("rate",)),
+        ("fouling-falling-rate", Truth(model="falling rate", errors={"loss": 0.01}), ("a", "b")),
+    ):
+        outcome = solved_survey(
+            tmp_path, cells(history(truth, 1, noise=0.0)), SURVEY.replace("kern-seaton-1959", card)
+        ).survey
+        assert outcome is not None
+        for symbol in figures:
+            name = "r" if symbol == "rate" else symbol
+            # As for the asymptotic model: the wall of the fouled unit; b takes it three times over.
+            rel = 0.02 if symbol == "b" else 0.006
+            assert outcome.figure(f"fitted {name}").value == pytest.approx(getattr(truth, symbol), rel=rel)
+
+
+def test_a_calculation_without_a_survey_has_none(tmp_path: Path) -> None:
+    path = tmp_path / "trial.yaml"
+    path.write_text(COOLER, encoding="utf-8")
+    solved = solve(read(path))
+    assert solved.survey is None
+    assert "Survey of plant data" not in record_text(solved)
+
+
+def test_a_long_history_is_read_column_by_column(tmp_path: Path, rows: list[list[str]]) -> None:
+    """More rows than are taken apart together, and columns that nothing asks for."""
+    from calcbook.calcfile.surveyfile import PIECE, read_history
+    from calcbook.faults import Collector, Place
+
+    many = [[f"{number}", "x, y", f"{number / 8}"] for number in range(PIECE + 7)]
+    write_history(tmp_path, many, ["t", "remark", "T"])
+    collector = Collector()
+    place = Place("trial.yaml")
+    found = read_history(tmp_path / "history.csv", {"t": place, "T": place}, place, collector)
+    collector.stop_if_any()
+    assert found is not None
+    assert found.rows == PIECE + 7
+    assert found.columns["T"].split("\n")[-1] == f"{(PIECE + 6) / 8}"
