@@ -79,6 +79,7 @@ ROOMS = (
     "properties",
     "library",
     "uncertainty",
+    "survey",
 )
 MADE_OF_PARTS = {"no-viscosity-model", "no-conductivity-model"}  # a property's name stands within the code
 

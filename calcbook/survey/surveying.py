@@ -107,7 +107,7 @@ class _Survey:
         kept = self.kept = self.solved_rows(rows, sieve)
         fitted = np.flatnonzero(kept.anchored)
         if len(fitted) < len(self.model.parameters) + len(self.starts) + FEWEST_FREE:
-            self.too_few(rows, sieve, len(fitted))
+            self.too_few(rows, kept, sieve, len(fitted))
             return None
         data = Data(
             kept.times[fitted] - self.starts[kept.cycles[fitted]],
@@ -118,14 +118,18 @@ class _Survey:
         found = fit(self.model, data)
         return self.told(rows, sieve, kept, fitted, found)
 
-    def too_few(self, rows: Rows, sieve: Sieve, left: int) -> None:
-        counts = ", ".join(f"{rule.id} {rule.count}" for rule in sieve.rules if rule.count)
+    def too_few(self, rows: Rows, kept: _Kept, sieve: Sieve, left: int) -> None:
+        assert self.model is not None
+        counts = [f"{rule.count} by {rule.id}" for rule in sieve.rules if rule.count]
+        if len(kept.times) > left:
+            counts.append(f"{len(kept.times) - left} before the first cleaning or without rows to anchor zero on")
+        wanted = ", ".join(self.model.symbols)
         self.collector.add(
             "survey-rows-missing",
             self.survey.place,
-            f"{left} of {len(rows)} rows are left to fit a model to",
-            found=f"rejected: {counts or 'none'}; the others lie before the first cleaning or have no zero",
-            expected="rows after a cleaning that the rules leave, and some in the time that anchors zero",
+            f"{left} of {len(rows)} rows are left, too few to fit {wanted} and the zero of each cleaning",
+            found=f"lost {', '.join(counts) or 'none'}",
+            expected="more rows after a cleaning that the rules leave, some of them in the time that anchors zero",
         )
 
     # -- rows ---------------------------------------------------------------------------------------
