@@ -203,5 +203,8 @@ CODES: dict[str, str] = {
     "link-revision-unknown": "a link is pinned to a revision that is not issued",
     "link-result-unknown": "a link to a result that the source does not have",
     "link-circular": "calculations take from each other in a circle",
+    "issued-unreadable": "the folder of issued copies cannot be looked into",
+    "sign-offs-moved": "the file of sign-offs was written by another while a sign-off was taken",
+    "place-not-recalled": "a place that does not rest on what is recalled",
     "issued-altered": "an issued copy is not what was frozen",
 }

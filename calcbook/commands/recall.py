@@ -62,6 +62,8 @@ def command(
 
     if bool(source and source.strip()) == bool(card):
         raise click.UsageError("--source TEXT or --card ID")
+    if only and not (source and value):
+        raise click.UsageError("--only says where a --value replaces the figure of a --source")
     collector = Collector()
     try:
         files = find_calculations(paths, output, collector)

@@ -80,8 +80,9 @@ class Library:
 
     def _built(self, name: str) -> Program:
         card = self.method(name)
-        # A built-in card uses built-in cards alone: the library looks for them before those of a book.
-        if self is not _built_in and not card.house:
+        # A built-in card uses built-in cards alone, as the library looks for them before those of a book. A
+        # library of another kind (with a card corrected, say) makes its own programs.
+        if type(self) is Library and self is not _built_in and not card.house:
             return _built_in.program(name)
         program = build_program(card, self.method)
         check_dimensions(program)

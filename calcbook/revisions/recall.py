@@ -16,7 +16,7 @@ from calcbook.chain.build import build
 from calcbook.chain.outcome import Solved
 from calcbook.documents import Document, Mapping, Node, Scalar
 from calcbook.documents import Sequence as ListNode
-from calcbook.faults import Collector, Fault, Faults, Place, shown
+from calcbook.faults import Collector, Fault, Faults, Place, nearest_names, shown
 from calcbook.library import ROOT, Library
 from calcbook.library.cards import Material, Method, Situation
 from calcbook.library.reading import read_material, read_method
@@ -101,7 +101,8 @@ def recall(files: Iterable[tuple[Path, Path]], wanted: Wanted) -> Recall:
     """Look through calculation files, each with its output folder, and through the issued copies in those
     folders.
 
-    Raises ``Faults`` (replacement-unfit) for a replacement that cannot be read, or that fits nothing found.
+    Raises ``Faults``: replacement-unfit for a replacement that cannot be read, or that fits nothing found;
+    place-not-recalled for a place of ``only`` where nothing stands that was found.
     """
     replacement = _replacement(wanted)
     found, failed, looked_at = [], [], 0
@@ -115,6 +116,7 @@ def recall(files: Iterable[tuple[Path, Path]], wanted: Wanted) -> Recall:
         rests = tuple(_rests(side, wanted))
         if rests:
             found.append(_recalled(side, state, rests, wanted, replacement))
+    _check_places(found, wanted)
     if wanted.value and found and not any(item.effect or item.failure for item in found):
         raise Faults(
             [
@@ -128,6 +130,26 @@ def recall(files: Iterable[tuple[Path, Path]], wanted: Wanted) -> Recall:
             ]
         )
     return Recall(wanted, tuple(found), looked_at, tuple(failed))
+
+
+def _check_places(found: Sequence[Recalled], wanted: Wanted) -> None:
+    """Refuse a name of ``only`` that is no place of what was recalled: a mistyped one would replace nothing."""
+    places = list(dict.fromkeys(rest.where for item in found for rest in item.rests))
+    names = {*places, *(place.rpartition("/")[2] for place in places)}
+    faults = [
+        Fault(
+            "place-not-recalled",
+            Place("--only"),
+            f"nothing that is recalled stands at `{shown(name)}`",
+            shown(name),
+            ", ".join(places) or "a place that rests on what is recalled",
+            nearest_names(name, sorted(names)),
+        )
+        for name in wanted.only
+        if name not in names
+    ]
+    if faults and found:
+        raise Faults(faults)
 
 
 def _sides(files: Sequence[tuple[Path, Path]]) -> Iterator[tuple[str, str, Callable[[], Side]]]:

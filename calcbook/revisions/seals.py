@@ -82,13 +82,32 @@ def issued_folder(output: Path, number: str) -> Path:
 def issued_copies(output: Path, number: str) -> tuple[Issued, ...]:
     """The issued copies of a calculation, oldest first.
 
-    Raises ``Faults``: seal-unreadable for a copy whose seal cannot be read.
+    Raises ``Faults``: seal-unreadable for a copy whose seal cannot be read, issued-unreadable where the
+    folder of issued copies cannot be looked into.
     """
     folder = issued_folder(output, number)
-    if not folder.is_dir():
-        return ()
-    copies = [read_seal(path) for path in folder.iterdir() if path.is_dir() and not path.name.startswith(".")]
+    copies = [read_seal(path) for path in _copies_in(folder)]
     return tuple(sorted(copies, key=lambda copy: revision_order(copy.revision)))
+
+
+def _copies_in(folder: Path) -> list[Path]:
+    """The folders of issued copies; none where nothing is issued. Raises ``Faults``: issued-unreadable."""
+    try:
+        if not folder.exists():
+            return []
+        return [path for path in folder.iterdir() if path.is_dir() and not path.name.startswith(".")]
+    except OSError as error:
+        raise Faults(
+            [
+                Fault(
+                    "issued-unreadable",
+                    Place(folder.as_posix()),
+                    "the folder of issued copies cannot be looked into",
+                    error.strerror or "",
+                    "a readable folder, with one folder for each issued revision",
+                )
+            ]
+        ) from None
 
 
 def read_seal(folder: Path) -> Issued:
@@ -161,14 +180,7 @@ def check_seal(folder: Path) -> tuple[SealFinding, ...]:
 def check_seals(output: Path, number: str) -> tuple[tuple[str, SealFinding], ...]:
     """The findings of every issued copy of a calculation, by revision; seals are held against each other."""
     folder = issued_folder(output, number)
-    names = (
-        sorted(
-            (path.name for path in folder.iterdir() if path.is_dir() and not path.name.startswith(".")),
-            key=revision_order,
-        )
-        if folder.is_dir()
-        else []
-    )
+    names = sorted((path.name for path in _copies_in(folder)), key=revision_order)
     findings = [(name, finding) for name in names for finding in check_seal(folder / name)]
     if findings:
         return tuple(findings)

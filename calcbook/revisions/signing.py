@@ -95,10 +95,19 @@ def sign(work: Work, role: str, person: str, date: datetime.date, blind: bool = 
     if blind:
         return _blind_step(work, role, signer, date, lifecycle)
     form = forms.form_path(work.path, role)
-    if role not in WITHOUT_FORM and not form.is_file():
+    if role not in WITHOUT_FORM and not _is_written(form):
         write_whole(form, forms.form_text(work.solved, role, signer))
         return Step(FORM_WRITTEN, form)
     return _take(work, role, signer, date)
+
+
+def _is_written(form: Path) -> bool:
+    """Whether a form is there to be read. Raises ``Faults``: file-is-folder where it can neither be read nor
+    written."""
+    if form.is_dir():
+        place = Place(form.as_posix())
+        raise _fault("file-is-folder", place, "a folder stands where the form is written", "", "a file")
+    return form.is_file()
 
 
 def parsed_date(text: str | None, place: Place) -> datetime.date:
@@ -252,7 +261,7 @@ def _blind_step(work: Work, role: str, signer: str, date: datetime.date, lifecyc
             f"a sign-off {role} with what is stored, or without hand values",
         )
     form = forms.form_path(work.path, role, blind=True)
-    if not form.is_file():
+    if not _is_written(form):
         write_whole(form, forms.blind_form_text(work.solved, role, signer))
         return Step(FORM_WRITTEN, form)
     calculation = work.solved.chain.calculation
@@ -263,7 +272,7 @@ def _blind_step(work: Work, role: str, signer: str, date: datetime.date, lifecyc
         )
     )
     path = signoffs_path(work.path)
-    write_signoffs(path, replace(kept, hand_values=(*kept.hand_values, entry)))
+    write_signoffs(path, replace(kept, hand_values=(*kept.hand_values, entry)), kept)
     form.unlink(missing_ok=True)
     return Step(VALUES_STORED, path)
 
@@ -307,7 +316,7 @@ def _take(work: Work, role: str, signer: str, date: datetime.date) -> Step:
     values = tuple(
         item for item in kept.hand_values if item.revision == calculation.revision and item.role != role
     )
-    write_signoffs(path, replace(kept, signoffs=tuple(ordered), hand_values=values))
+    write_signoffs(path, replace(kept, signoffs=tuple(ordered), hand_values=values), kept)
     write_record(work)
     if role not in WITHOUT_FORM:
         forms.form_path(work.path, role).unlink(missing_ok=True)
@@ -365,7 +374,7 @@ def declare_void(work: Work, person: str, date: datetime.date, because: str) -> 
             shown(because),
             "why it is void and what replaces it",
         )
-    write_signoffs(path, replace(kept, void=Voiding(signer, date.isoformat(), visible(because))))
+    write_signoffs(path, replace(kept, void=Voiding(signer, date.isoformat(), visible(because))), kept)
     write_record(work)
     return Step(VOID, path)
 

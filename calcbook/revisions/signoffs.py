@@ -368,8 +368,23 @@ def read_signoffs(path: Path) -> SignOffFile:
     )
 
 
-def write_signoffs(path: Path, content: SignOffFile) -> None:
-    """Write the sign-offs whole. Raises ``OSError``."""
+def write_signoffs(path: Path, content: SignOffFile, read: SignOffFile) -> None:
+    """Write the sign-offs whole, where the file still says what was ``read`` from it.
+
+    Raises ``Faults`` (sign-offs-moved) where another has written meanwhile, and ``OSError``.
+    """
+    if read_signoffs(path) != read:
+        raise Faults(
+            [
+                Fault(
+                    "sign-offs-moved",
+                    Place(path.as_posix()),
+                    "another has written the sign-offs meanwhile; nothing is signed",
+                    "",
+                    "the same command again",
+                )
+            ]
+        )
     write_whole(path, signoffs_text(content))
 
 

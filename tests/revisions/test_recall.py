@@ -155,3 +155,18 @@ def test_the_command(book: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     assert (
         json.loads(run(main, ["recall", ".", "--source", "nobody", "--format", "json"]).output)["found"] == []
     )
+
+
+def test_a_place_that_nothing_recalled_stands_at_is_told_with_the_nearest(book: Path) -> None:
+    with pytest.raises(Faults) as caught:
+        looked(book, Wanted(source="standard 3", value="3.5e-4 m^2 K/W", only=("R_fi", "R_f0")))
+    (fault,) = caught.value.faults
+    assert (fault.code, fault.found) == ("place-not-recalled", "R_f0")
+    assert "R_fo" in fault.nearest
+    assert "givens/R_fo" in fault.expected
+
+
+def test_a_place_without_a_replacement_is_a_mistake_of_the_command_line(book: Path) -> None:
+    result = CliRunner().invoke(main, ["recall", str(book), "--source", "standard 3", "--only", "R_fi"])
+    assert result.exit_code == 2
+    assert "--only" in result.output

@@ -589,3 +589,44 @@ def test_a_reason_for_void_is_a_sentence(path: Path) -> None:
 def test_open_work_tells_the_faults_of_the_file(path: Path) -> None:
     change(path, "value: 15.75 mm", "value: 15.75")
     assert "unit-missing" in codes(lambda: open_work(path, "wc-101.yaml", path.parent))
+
+
+def test_a_sign_off_does_not_write_over_what_another_has_written_meanwhile(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    path = make_book(tmp_path)
+    meanwhile = signoffs_text(SignOffFile(void=Voiding("ta", "2026-09-02", "It is replaced by WC-201.")))
+
+    def another_writes(entry: SignOff) -> SignOff:
+        signoffs_path(path).write_text(meanwhile, encoding="utf-8")
+        return bound(entry)
+
+    monkeypatch.setattr(signing, "bound", another_writes)
+    with pytest.raises(Faults) as caught:
+        sign_prepared(path)
+    assert [fault.code for fault in caught.value.faults] == ["sign-offs-moved"]
+    assert signoffs_path(path).read_text(encoding="utf-8") == meanwhile
+    assert not (tmp_path / "output").exists()
+
+
+@pytest.mark.parametrize("blind", [False, True])
+def test_a_folder_in_the_place_of_a_form_is_told(tmp_path: Path, blind: bool) -> None:
+    path = make_book(tmp_path)
+    sign_prepared(path)
+    form = forms.form_path(path, "checked", blind)
+    form.mkdir()
+    with pytest.raises(Faults) as caught:
+        sign(work_of(path), "checked", "mr", day("2026-09-03"), blind)
+    (fault,) = caught.value.faults
+    assert (fault.code, fault.place.file) == ("file-is-folder", form.as_posix())
+
+
+def test_what_stands_in_the_place_of_the_issued_copies_is_told(tmp_path: Path) -> None:
+    path = make_book(tmp_path)
+    issued = tmp_path / "output/WC-101/issued"
+    issued.parent.mkdir(parents=True)
+    issued.write_text("a file, not a folder", encoding="utf-8")
+    with pytest.raises(Faults) as caught:
+        sign_prepared(path)
+    (fault,) = caught.value.faults
+    assert (fault.code, fault.place.file) == ("issued-unreadable", issued.as_posix())
