@@ -8,6 +8,8 @@ from pathlib import Path
 
 import click
 
+from calcbook.commands.options import form_option, output_option
+
 FINDINGS = 1
 
 
@@ -19,13 +21,8 @@ FINDINGS = 1
     type=click.Path(path_type=Path, exists=True),
     metavar="FILE_OR_FOLDER...",
 )
-@click.option(
-    "--output",
-    type=click.Path(path_type=Path, file_okay=False),
-    metavar="DIR",
-    help="Folder of the records; else the book's own, else ./output.",
-)
-@click.option("--format", "form", type=click.Choice(["text", "markdown"]), default="text", show_default=True)
+@output_option()
+@form_option("text", "markdown")
 def command(paths: tuple[Path, ...], output: Path | None, form: str) -> None:
     """Check that every file is valid, every record current, sign-offs valid for the content, issued copies
     unaltered, links current, and no erratum touches an issued record.

@@ -8,6 +8,8 @@ from pathlib import Path
 
 import click
 
+from calcbook.commands.options import form_option, output_option
+
 FAULT, NOT_CONVERGED = 2, 3
 PAGE = "comparison.md"
 
@@ -24,20 +26,8 @@ PAGE = "comparison.md"
     metavar="NAME",
     help="Result to attribute; else U_service. Repeatable.",
 )
-@click.option(
-    "--format",
-    "form",
-    type=click.Choice(["markdown", "json"]),
-    default="markdown",
-    show_default=True,
-    help="Form on standard output.",
-)
-@click.option(
-    "--output",
-    type=click.Path(path_type=Path, file_okay=False),
-    metavar="DIR",
-    help="Folder of the records and issued copies; else the book's own, else ./output.",
-)
+@form_option("markdown", "json")
+@output_option("records and issued copies")
 def command(
     sides: tuple[str, ...], since: str | None, results: tuple[str, ...], form: str, output: Path | None
 ) -> None:

@@ -7,6 +7,7 @@ from pathlib import Path
 
 import click
 
+from calcbook.commands.options import output_option
 from calcbook.faults import Collector, Faults, Place
 
 FAULT, NOT_CONVERGED = 2, 3
@@ -16,12 +17,7 @@ FAULT, NOT_CONVERGED = 2, 3
 @click.argument("file", type=click.Path(path_type=Path, dir_okay=False), metavar="FILE")
 @click.option("--preliminary", is_flag=True, help="Issue with open items; the record says so on top.")
 @click.option("--date", metavar="YYYY-MM-DD", help="Date of the issue; today without it.")
-@click.option(
-    "--output",
-    type=click.Path(path_type=Path, file_okay=False),
-    metavar="DIR",
-    help="Folder of the records; else the book's own, else ./output.",
-)
+@output_option()
 def command(file: Path, preliminary: bool, date: str | None, output: Path | None) -> None:
     """Freeze file, settings, house cards, record, results and sign-offs under issued/REVISION, with a seal.
 

@@ -9,6 +9,8 @@ from typing import TYPE_CHECKING
 
 import click
 
+from calcbook.commands.options import cards_option, page_folder_option
+
 if TYPE_CHECKING:
     from calcbook.library import Library
     from calcbook.record.blocks import Block
@@ -34,12 +36,7 @@ def _print(blocks: Iterable[Block]) -> None:
 
 
 @command.command("list")
-@click.option(
-    "--cards",
-    type=click.Path(path_type=Path, exists=True, file_okay=False),
-    metavar="DIR",
-    help="A book's own cards, listed with the others.",
-)
+@cards_option("listed with the others")
 def list_cards(cards: Path | None) -> None:
     """List every situation with its methods, and every material."""
     from calcbook.record.library_pages import overview
@@ -48,20 +45,8 @@ def list_cards(cards: Path | None) -> None:
 
 
 @command.command("overview")
-@click.option(
-    "--output",
-    type=click.Path(path_type=Path, file_okay=False),
-    default=Path("output"),
-    metavar="DIR",
-    show_default=True,
-    help="Folder of library.md.",
-)
-@click.option(
-    "--cards",
-    type=click.Path(path_type=Path, exists=True, file_okay=False),
-    metavar="DIR",
-    help="A book's own cards, counted in.",
-)
+@page_folder_option("library.md")
+@cards_option("counted in")
 def overview_page(output: Path, cards: Path | None) -> None:
     """Write library.md: every situation, its methods, their ranges as bars, accuracy, state and source."""
     from calcbook.files import write_whole
@@ -78,12 +63,7 @@ def overview_page(output: Path, cards: Path | None) -> None:
 
 @command.command("family")
 @click.argument("name")
-@click.option(
-    "--cards",
-    type=click.Path(path_type=Path, exists=True, file_okay=False),
-    metavar="DIR",
-    help="A book's own cards, counted in.",
-)
+@cards_option("counted in")
 def family(name: str, cards: Path | None) -> None:
     """Show the page of the family NAME: methods that share an ancestor, their ranges, and where they act."""
     from calcbook.faults import nearest_names
@@ -100,12 +80,7 @@ def family(name: str, cards: Path | None) -> None:
 
 @command.command("show")
 @click.argument("name")
-@click.option(
-    "--cards",
-    type=click.Path(path_type=Path, exists=True, file_okay=False),
-    metavar="DIR",
-    help="A book's own cards, shown like the others.",
-)
+@cards_option("shown like the others")
 def show(name: str, cards: Path | None) -> None:
     """Show the page of the situation, method or material NAME."""
     from calcbook.faults import nearest_names

@@ -8,6 +8,8 @@ from pathlib import Path
 
 import click
 
+from calcbook.commands.options import form_option, output_option
+
 FAULT = 2
 
 
@@ -26,20 +28,8 @@ FAULT = 2
     help="Replacement: a quantity for a source; for a card OLD=NEW, a figure as the card writes it.",
 )
 @click.option("--only", multiple=True, metavar="PLACE", help="Replace only here, such as R_fo. Repeatable.")
-@click.option(
-    "--format",
-    "form",
-    type=click.Choice(["markdown", "json"]),
-    default="markdown",
-    show_default=True,
-    help="Form on standard output.",
-)
-@click.option(
-    "--output",
-    type=click.Path(path_type=Path, file_okay=False),
-    metavar="DIR",
-    help="Folder of the issued copies; else the book's own, else ./output.",
-)
+@form_option("markdown", "json")
+@output_option("issued copies")
 def command(
     paths: tuple[Path, ...],
     source: str | None,

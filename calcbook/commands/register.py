@@ -9,23 +9,13 @@ from pathlib import Path
 
 import click
 
+from calcbook.commands.options import form_option, output_option
+
 
 @click.command("register", short_help="List every calculation of a book with its status.")
 @click.argument("folder", type=click.Path(path_type=Path, exists=True, file_okay=False))
-@click.option(
-    "--output",
-    type=click.Path(path_type=Path, file_okay=False),
-    metavar="DIR",
-    help="Folder of the records; else the book's own, else ./output.",
-)
-@click.option(
-    "--format",
-    "form",
-    type=click.Choice(["markdown", "json"]),
-    default="markdown",
-    show_default=True,
-    help="markdown also writes register.md to the folder of the records.",
-)
+@output_option()
+@form_option("markdown", "json", words="markdown also writes register.md to the folder of the records.")
 def command(folder: Path, output: Path | None, form: str) -> None:
     """List the calculations in FOLDER: number, title, revision, state, confirmation, U in service, open items,
     what each takes from others and what it feeds."""

@@ -7,6 +7,7 @@ from pathlib import Path
 
 import click
 
+from calcbook.commands.options import output_option
 from calcbook.faults import Collector, Faults, Place
 
 FAULT = 2
@@ -16,12 +17,7 @@ FAULT = 2
 @click.argument("file", type=click.Path(path_type=Path, dir_okay=False), metavar="FILE")
 @click.option("--numbers", is_flag=True, help="Begin the numbers of a book with letters then numbers.")
 @click.option("--date", metavar="YYYY-MM-DD", help="Date of the revision; today without it.")
-@click.option(
-    "--output",
-    type=click.Path(path_type=Path, file_okay=False),
-    metavar="DIR",
-    help="Folder of the records; else the book's own, else ./output.",
-)
+@output_option()
 def command(file: Path, numbers: bool, date: str | None, output: Path | None) -> None:
     """Write the next revision by the book's scheme into the file, with a line whose reason is to be written.
 

@@ -11,6 +11,7 @@ import click
 
 from calcbook.book import Found, Outcome, find_calculations, run_all
 from calcbook.book.mistakes import MISTAKE_ACTION
+from calcbook.commands.options import output_option
 from calcbook.faults import Collector, Faults
 
 COLUMNS = ("number", "revision", "U clean", "U service", "open items")
@@ -22,12 +23,7 @@ FAULT, NOT_CONVERGED, MISTAKE, INTERRUPTED = 2, 3, 4, 130
 @click.argument(
     "paths", nargs=-1, required=True, type=click.Path(path_type=Path), metavar="FILE_OR_FOLDER..."
 )
-@click.option(
-    "--output",
-    type=click.Path(path_type=Path, file_okay=False),
-    metavar="DIR",
-    help="Folder of the records; else the book's own, else ./output.",
-)
+@output_option()
 @click.option(
     "--jobs",
     type=click.IntRange(1, 256),

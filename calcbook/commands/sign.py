@@ -7,6 +7,7 @@ from pathlib import Path
 
 import click
 
+from calcbook.commands.options import output_option
 from calcbook.faults import Collector, Faults, Place
 
 FAULT, NOT_CONVERGED = 2, 3
@@ -21,12 +22,7 @@ FAULT, NOT_CONVERGED = 2, 3
 @click.option(
     "--void", "because", metavar="REASON", help="Declare the calculation void, in place of signing it."
 )
-@click.option(
-    "--output",
-    type=click.Path(path_type=Path, file_okay=False),
-    metavar="DIR",
-    help="Folder of the records; else the book's own, else ./output.",
-)
+@output_option()
 def command(
     file: Path,
     role: str | None,

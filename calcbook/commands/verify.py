@@ -7,24 +7,14 @@ from pathlib import Path
 
 import click
 
+from calcbook.commands.options import cards_option, page_folder_option
+
 FINDINGS, FAULT = 1, 2
 
 
 @click.command("verify", short_help="Run every check point on this installation.")
-@click.option(
-    "--output",
-    type=click.Path(path_type=Path, file_okay=False),
-    default=Path("output"),
-    metavar="DIR",
-    show_default=True,
-    help="Folder of verification.md.",
-)
-@click.option(
-    "--cards",
-    type=click.Path(path_type=Path, exists=True, file_okay=False),
-    metavar="DIR",
-    help="A book's own cards, checked with the others.",
-)
+@page_folder_option("verification.md")
+@cards_option("checked with the others")
 def command(output: Path, cards: Path | None) -> None:
     """Run every check point of every card on this installation and write verification.md.
 

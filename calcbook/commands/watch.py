@@ -7,6 +7,7 @@ from pathlib import Path
 import click
 
 from calcbook.book import Outcome
+from calcbook.commands.options import output_option
 from calcbook.commands.run import COLUMNS, cells, tell_failure
 from calcbook.faults import Faults
 
@@ -15,12 +16,7 @@ from calcbook.faults import Faults
 @click.argument(
     "paths", nargs=-1, required=True, type=click.Path(path_type=Path), metavar="FILE_OR_FOLDER..."
 )
-@click.option(
-    "--output",
-    type=click.Path(path_type=Path, file_okay=False),
-    metavar="DIR",
-    help="Folder of the records; else the book's own, else ./output.",
-)
+@output_option()
 def command(paths: tuple[Path, ...], output: Path | None) -> None:
     """Calculate every file (a folder: its *.yaml), then keep running: when a file is saved, its record is
     written anew, as when book.yaml, a card of the book, a table file or a calculation that it takes from
