@@ -27,7 +27,7 @@ ICE_POINT = 273.15
 
 
 def overview(library: Library) -> tuple[Block, ...]:
-    """Every situation with its methods, every material, by name."""
+    """Every situation with its methods, the methods of no situation, every material, by name."""
     blocks: list[Block] = [Heading(1, "Library"), Heading(2, "Situations and their methods")]
     for name in library.names("situations"):
         situation = library.situation(name)
@@ -42,6 +42,7 @@ def overview(library: Library) -> tuple[Block, ...]:
             for method in situation.methods
         ]
         blocks.append(TableBlock(("Method", "Title", "Family", "State"), tuple(rows)))
+    blocks += _methods_apart(library)
     blocks.append(Heading(2, "Materials"))
     materials: list[tuple[str, ...]] = []
     for name in library.names("materials"):
@@ -49,6 +50,20 @@ def overview(library: Library) -> tuple[Block, ...]:
         materials.append((name, card.title, card.kind, _temperatures(card), card.standing, card.state.status))
     blocks.append(TableBlock(("Material", "Title", "Kind", "Range", "Standing", "State"), tuple(materials)))
     return tuple(blocks)
+
+
+def _methods_apart(library: Library) -> list[Block]:
+    """The methods that no situation lists: walls, fins, friction, rating, growth of fouling, cleaning."""
+    listed = {method for name in library.names("situations") for method in library.situation(name).methods}
+    rows = []
+    for name in library.names("methods"):
+        if name not in listed:
+            card = library.method(name)
+            rows.append((name, card.title, card.gives, card.family, card.state.status))
+    return [
+        Heading(2, "Methods of no situation"),
+        TableBlock(("Method", "Title", "Gives", "Family", "State"), tuple(rows)),
+    ]
 
 
 def page(library: Library, name: str) -> tuple[Block, ...] | None:

@@ -25,6 +25,7 @@ from calcbook.record.library_overview import (
     range_of,
     scale,
 )
+from calcbook.record.library_pages import overview
 from calcbook.record.markdown import markdown
 
 LIBRARY = Library()
@@ -149,3 +150,11 @@ def test_the_commands(tmp_path: Path) -> None:
     assert shown.exit_code == 0 and shown.output.startswith("# Family petukhov\n")
     missing = runner.invoke(command, ["family", "petukov"])
     assert missing.exit_code == 2 and "nearest: petukhov" in missing.output
+
+
+def test_the_list_names_every_method_in_a_situation_or_apart() -> None:
+    listed = markdown(overview(LIBRARY))
+    for name in LIBRARY.names("methods"):
+        assert f"| {name} | " in listed
+    apart = listed.partition("## Methods of no situation")[2].partition("\n## ")[0]
+    assert "| kern-seaton-1959 | " in apart and "| gnielinski-1976 | " not in apart
