@@ -14,13 +14,13 @@ import numpy as np
 
 from calcbook.calcfile.in_service import CLEANED_UNIT, DUTY
 from calcbook.chain.growth_outcome import ClosedForm, Interval, OverTime, TimeRow
-from calcbook.chain.outcome import Solved
+from calcbook.chain.outcome import Result, Solved
 from calcbook.chain.pressure import drops, evaluate_pressure_drops
 from calcbook.chain.solve import Solution, solve
 from calcbook.chain.types import SERVICE, Chain
 from calcbook.chain.variants import with_figures
 from calcbook.formulas import evaluate, parse_expression
-from calcbook.library import evaluate_method
+from calcbook.library import evaluate_method, vocabulary
 from calcbook.rating.day_one import open_chain
 from calcbook.rating.summing import Summed, crossing, root
 
@@ -52,7 +52,26 @@ def over_time(solved: Solved) -> Solved:
     if table.interval is not None and table.interval.closed_form is not None:
         card = solved.chain.library.method(table.interval.closed_form.card)
         used[f"method {card.id}"] = card.digest_text
-    return replace(solved, over_time=table, cards=used)
+    base = replace(solved.base, results={**solved.base.results, **_results(table)})
+    return replace(solved, over_time=table, cards=used, cases=(base, *solved.cases[1:]))
+
+
+def _results(table: OverTime) -> dict[str, Result]:
+    """The named results that other calculations may take: times that are there."""
+    kinds = vocabulary()
+    found = {
+        "time_until_duty_lost": (table.duty_lost, "service time", "time in service until the duty is lost"),
+        "cleaning_interval": (
+            table.interval.interval if table.interval is not None else NAN,
+            "cleaning interval",
+            "cleaning interval of the least mean over a cycle",
+        ),
+    }
+    return {
+        name: Result(name, value, kinds[kind], title)
+        for name, (value, kind, title) in found.items()
+        if math.isfinite(value)
+    }
 
 
 class _Course:

@@ -347,6 +347,22 @@ def test_the_record_holds_table_lost_duty_and_interval(cooler: Solved) -> None:
         assert eval(expression) == pytest.approx(printed, rel=2e-5)
 
 
+def test_another_calculation_takes_the_interval(cooler: Solved, tmp_path: Path) -> None:
+    assert cooler.over_time is not None and cooler.over_time.interval is not None
+    results = cooler.base.results
+    assert results["cleaning_interval"].value == cooler.over_time.interval.interval
+    assert results["time_until_duty_lost"].value == cooler.over_time.duty_lost
+    cleaning = money(9000, 28).removeprefix(TABLE)
+    (tmp_path / "gr-1.yaml").write_text(COOLER + cleaning, encoding="utf-8")
+    taking = COOLER.replace("number: GR-1", "number: GR-2").replace(
+        "{value: 6 months, is: time since the last cleaning, source: s}",
+        "{from: {calculation: GR-1, result: cleaning_interval}, is: time since the last cleaning}",
+    )
+    (tmp_path / "gr-2.yaml").write_text(taking, encoding="utf-8")
+    taken = solve_file(tmp_path / "gr-2.yaml").base.solutions[SERVICE].number("given/t_after")
+    assert taken == pytest.approx(cooler.over_time.interval.interval, rel=1e-9)
+
+
 def test_every_figure_stands_in_the_digest(cooler: Solved) -> None:
     assert cooler.over_time is not None
     names = [name for name, _, _ in growth_figures(cooler.over_time)]
