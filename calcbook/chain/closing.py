@@ -22,8 +22,10 @@ if TYPE_CHECKING:
 
 Array = np.ndarray
 MAXIMUM_PASSES = 60
-# Most circuits close in six to ten.
+# A search over many samples gives up after so many (most circuits close in four to seven), and sooner where a law
+# has no value, or a worse one, so many times running.
 FEW_PASSES = 10
+FEW_HALVINGS = 2
 # The step that remains, judged from the last two, relative to the unknowns.
 STEP_TOLERANCE = 1e-15
 # A step so small settles by itself: rounding in the laws hides smaller ones, and the more so the smaller a
@@ -126,6 +128,7 @@ class _Passes:
         self.merit = np.full(size, np.inf)
         self.fresh = np.ones(size, dtype=bool)
         self.done = np.zeros(size, dtype=bool)
+        self.halvings = np.zeros(size, dtype=int)
         self.difference = engine.part(engine.difference, samples)
         self.still = engine.part(engine.still, samples)
         if engine.foreign:
@@ -139,6 +142,8 @@ class _Passes:
                 break
             self._pass(active)
             active = active[~self.done[active]]
+            if passes == FEW_PASSES:
+                active = active[self.halvings[active] <= FEW_HALVINGS]
         self.engine.flow[self.samples] = self.unknown[0]
         self.engine.drops[:, self.samples] = self.unknown[1:]
         return self.done
@@ -186,6 +191,7 @@ class _Passes:
 
     def _halve(self, places: Array) -> None:
         """Go back half of the last step: it led where a law has no value, or too far."""
+        self.halvings[places] += 1
         step = 0.5 * _taken(self.step, places)
         self.step[:, places] = step
         self.unknown[:, places] = self._stepped(_taken(self.before, places), step, places)
@@ -194,6 +200,7 @@ class _Passes:
     def _advance(self, places: Array, unknown: Array, step: Array, merit: Array) -> None:
         if not self.engine.foreign:
             step = np.clip(step, -LARGEST_LOG_STEP, LARGEST_LOG_STEP)
+        self.halvings[places] = 0
         length = self._length(unknown, step, places)
         ratio = length / self.length[places]
         self.before[:, places] = unknown

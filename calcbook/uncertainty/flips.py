@@ -39,18 +39,20 @@ Key = tuple[str, str, str]
 Group = tuple[str, ...]
 # A figure at which a verdict flips is known this well, relative to itself, and to the change that leads to it.
 KNOWN, KNOWN_OF_CHANGE = 1e-9, 1e-4
+# Where a figure stands at a limit already, next to no change flips it.
+BEST_KNOWN = 1e-12
 # Printed figures have so many digits, and more where the change would have fewer than this many.
-PRINTED_DIGITS, CHANGE_DIGITS = 6, 4
+PRINTED_DIGITS, CHANGE_DIGITS, MOST_DIGITS = 6, 4, 10
 TYPED_DIGITS = 12
 MOST_ROUNDS = 16
 # How far beside an interpolated place an interval is divided, in parts of the interval: at first, then again.
 FIRST_PARTS = (1e-4, 3e-3, 0.06)
-NEXT_PARTS = (1e-6, 1e-2)
+NEXT_PARTS = (1e-5, 1e-3, 0.03)
 STATE_PARTS = (1e-3, 0.03)
 # The place itself is enclosed by this part of how well it must be known.
 CLOSE = 0.3
 # Samples on either side of an interval that tell where a margin passes zero in it.
-AROUND = 2
+AROUND = 3
 EVENLY_WITHOUT, EVENLY_AT_END, EVENLY_FOR_STATES = 15, 7, 3
 INTERPOLATED_ROUNDS, END_ROUNDS = 2, 2
 
@@ -115,7 +117,7 @@ class _Bracket:
         width = abs(self.outside - self.inside)
         if self.line.whole:
             return width <= 1.0
-        return width <= min(KNOWN * abs(self.outside), KNOWN_OF_CHANGE * self.most)
+        return width <= _resolution(self.outside, self.line.now)
 
 
 @dataclass(eq=False)
@@ -376,9 +378,9 @@ class _Search:
                 for sign in (-1.0, 1.0)
             ]
             if number:
-                close = CLOSE * min(KNOWN * abs(place), KNOWN_OF_CHANGE * abs(place - line.now))
-                figures += [place - close, place + close]
-                figures += _Printing(line, place, self._given(line)).figures()
+                close = CLOSE * _resolution(place, line.now)
+                for enclosing in (place - close, place + close):
+                    figures += [enclosing, *_Printing(line, enclosing, self._given(line)).figures()]
         return [figure for figure in figures if min(low, high) < figure < max(low, high)]
 
     def _crossings(self, bracket: _Bracket) -> list[float]:
@@ -387,6 +389,9 @@ class _Search:
         around = slice(max(bracket.before - AROUND, 0), bracket.before + 2 + AROUND)
         margins = self.table.margin(bracket.row)[:, line.places[around]]
         figures = line.figures[around].tolist()
+        by_logarithm = line.item.kind.scale != "point" and min(figures) > 0.0
+        if by_logarithm:
+            figures = [math.log(figure) for figure in figures]
         at = bracket.before - around.start
         found = []
         for margin in margins.tolist():
@@ -397,11 +402,12 @@ class _Search:
                 or first == second
             ):
                 continue
-            low, high = sorted((bracket.inside, bracket.outside))
-            straight = figures[at] - first * (figures[at + 1] - figures[at]) / (second - first)
+            low, high = sorted(figures[at : at + 2])
             known = [place for place, figure in enumerate(margin) if math.isfinite(figure)]
-            curved = _interpolated([margin[place] for place in known], [figures[place] for place in known])
-            found.append(curved if low < curved < high else straight)
+            crossing = _interpolated([margin[place] for place in known], [figures[place] for place in known])
+            if not low < crossing < high:
+                crossing = figures[at] - first * (figures[at + 1] - figures[at]) / (second - first)
+            found.append(math.exp(crossing) if by_logarithm else crossing)
         return found
 
     def _before_end(self, line: _Line) -> list[float]:
@@ -521,6 +527,12 @@ class _Search:
         return figure, self.table.reasons[self.table.missing[line.places[end]]]
 
 
+def _resolution(figure: float, now: float) -> float:
+    """How well a figure at which a verdict flips is to be known."""
+    wanted = min(KNOWN * abs(figure), KNOWN_OF_CHANGE * abs(figure - now))
+    return max(wanted, BEST_KNOWN * max(abs(figure), abs(now)))
+
+
 def _interpolated(margins: list[float], figures: list[float]) -> float:
     """The figure at which a margin is zero: through all samples, taken as a curve of the margin; NaN without one."""
     steps = [second - first for first, second in itertools.pairwise(margins)]
@@ -575,9 +587,8 @@ class _Printing:
             return outside, outside - direction
         exact = self._in_unit(self.outside)
         change = abs(exact - self.now)
-        last = min(
-            exact.adjusted() - PRINTED_DIGITS + 1 if exact else 0, change.adjusted() - CHANGE_DIGITS + 1
-        )
+        last = min(exact.adjusted() - PRINTED_DIGITS, change.adjusted() - CHANGE_DIGITS) + 1
+        last = max(last, exact.adjusted() - MOST_DIGITS + 1)
         unit = Decimal(1).scaleb(last - self.digits)
         outside = exact.quantize(unit, rounding=ROUND_CEILING if direction > 0 else ROUND_FLOOR)
         return outside, outside - direction * unit
