@@ -98,6 +98,7 @@ def lay_out_gap(
             expected="thickness: … with its unit",
         )
     fluid = _fluid(scope, library, term)
+    _check_emissivities(scope, term)
     if situation is None or fluid is None or not distance:
         return None, None
     figures = {**dimensions, "gap": distance}
@@ -283,19 +284,22 @@ def _fluid(scope: Scope, library: Library, term: Term) -> StreamState | None:
     )
 
 
-def _radiation(film: GapScope) -> Branch | None:
-    """Radiation from side to side; none without emissivities, which is said."""
-    scope, term = film.scope, film.term
-    stated = [key for key in EMISSIVITIES if key in term.values]
-    if len(stated) == 1:
-        missing = next(key for key in EMISSIVITIES if key not in stated)
+def _check_emissivities(scope: Scope, term: Term) -> None:
+    """Both emissivities or none: radiation from side to side follows from both."""
+    missing = [key for key in EMISSIVITIES if key not in term.values]
+    if len(missing) == 1:
         scope.collector.add(
             "key-missing",
             term.place,
-            f"the gap `{term.name}` lacks `{missing}`",
+            f"the gap `{term.name}` lacks `{missing[0]}`",
             expected="both emissivities, or none of them",
         )
-    if len(stated) < len(EMISSIVITIES):
+
+
+def _radiation(film: GapScope) -> Branch | None:
+    """Radiation from side to side; none without emissivities, which is said."""
+    scope, term = film.scope, film.term
+    if not all(key in term.values for key in EMISSIVITIES):
         scope.assume(
             f"{term.name}/no radiation",
             f"No radiation crosses {term.name}.",
