@@ -202,6 +202,7 @@ class _Differences:
             ("cases", self._cases),
             ("accept", self._statements),
             ("uncertainty", self._beside),
+            ("survey", self._beside),
         )
         for name, read in sections:
             read(name)
@@ -449,7 +450,7 @@ class _Differences:
             self._whole((section, name), "report", f"report, {name}", old, new, key, moves=name == "U on")
 
     def _beside(self, section: str) -> None:
-        """A section that moves no result: one change as a whole."""
+        """A section that moves no U: one change as a whole."""
         old, new = self._roots(section)
         if _meaning(old) != _meaning(new):
             self._whole((section,), section, section, old, new, None, moves=False)

@@ -181,7 +181,8 @@ def _copied(work: Work) -> Iterator[tuple[str, bytes]]:
         # A built-in card goes before a house card of the same name.
         if chain.library.house is not None and not (BUILT_IN / f"{kind}s" / f"{card}.yaml").is_file():
             yield f"{HOUSE_CARDS}/{card}.yaml", (chain.library.house / f"{card}.yaml").read_bytes()
-    for table in sorted(set(_table_files(calculation.meaning))):
+    history = {calculation.survey.file} if calculation.survey is not None else set()
+    for table in sorted({*_table_files(calculation.meaning), *history}):
         if table in (CALCULATION, BOOK, RECORD, RESULTS, SIGNOFFS, SEAL_NAME):
             message = f"the table file {table} has the name of a part of the issued copy"
             raise Faults([Fault("name-not-allowed", work.place, message, table, "another name for it")])

@@ -26,7 +26,7 @@ from calcbook.library.operations import Operation
 from calcbook.revisions.changes import ORDER, Change, Edit, entries_of, item_name
 from calcbook.revisions.sides import Side
 
-LEFT_OUT = frozenset(("revisions", "assumptions", "acceptance", "cases", "accept", "uncertainty"))
+LEFT_OUT = frozenset(("revisions", "assumptions", "acceptance", "cases", "accept", "uncertainty", "survey"))
 LISTS = ("resistances", "parallel", "acceptance", "accept", "revisions")
 
 
@@ -233,10 +233,13 @@ def _in_order(root: Node, order: Sequence[str]) -> Node:
 
 
 def unlinked(root: Node) -> Node:
-    """The tree without the links of its givens: their values are written out."""
+    """The tree that needs no other file: without the links of its givens, whose values are written out, and
+    without its survey, whose history stands beside the file and moves no U."""
     assert isinstance(root, Mapping)
     entries = []
     for key, value in root.entries:
+        if key.text == "survey":
+            continue
         if key.text == "givens" and isinstance(value, Mapping):
             givens = tuple(
                 (name, _without(given, "from") if isinstance(given, Mapping) else given)

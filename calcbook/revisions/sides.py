@@ -39,6 +39,10 @@ _ISSUED_COPY = re.compile(r"([A-Za-z0-9][A-Za-z0-9_.-]{0,39})@([A-Za-z0-9][A-Za-
 Data = Mapping[str, object]
 
 
+# A column of a history is told by the first digits of its digest.
+MARK_LENGTH = 12
+
+
 @dataclass(frozen=True)
 class Side:
     """A calculation as one side of a comparison.
@@ -315,9 +319,9 @@ def _json(text: str, called: str) -> Data:
 
 
 def _written_out(root: Node, folder: Path, calculation: Calculation) -> Node:
-    """A tree that stands by itself: table files as tables, and the value of every given that is taken from
-    elsewhere."""
-    root = _with_tables(root, folder)
+    """A tree that stands by itself: table files as tables, what the history of a survey holds, and the value
+    of every given that is taken from elsewhere."""
+    root = _with_history(_with_tables(root, folder), calculation)
     givens = root.get("givens") if isinstance(root, MappingNode) else None
     if not isinstance(root, MappingNode) or not isinstance(givens, MappingNode):
         return root
@@ -330,6 +334,26 @@ def _written_out(root: Node, folder: Path, calculation: Calculation) -> Node:
     whole = MappingNode(tuple(entries), givens.place)
     return MappingNode(
         tuple((key, whole if node is givens else node) for key, node in root.entries), root.place
+    )
+
+
+def _with_history(root: Node, calculation: Calculation) -> Node:
+    """A tree whose survey says what its history holds: the number of rows, and a mark of each column."""
+    survey = root.get("survey") if isinstance(root, MappingNode) else None
+    if not (
+        isinstance(root, MappingNode) and isinstance(survey, MappingNode) and calculation.survey is not None
+    ):
+        return root
+    place = survey.place
+    held = tuple(
+        (Scalar(f"{name} of {calculation.survey.file}", place), Scalar(content[:MARK_LENGTH], place))
+        for name, (content,) in calculation.survey.history.content().items()
+    )
+    whole = MappingNode((*survey.entries, *held), place, survey.in_braces)
+    return MappingNode(
+        tuple((key, whole if node is survey else node) for key, node in root.entries),
+        root.place,
+        root.in_braces,
     )
 
 

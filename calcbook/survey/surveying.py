@@ -122,7 +122,9 @@ class _Survey:
         assert self.model is not None
         counts = [f"{rule.count} by {rule.id}" for rule in sieve.rules if rule.count]
         if len(kept.times) > left:
-            counts.append(f"{len(kept.times) - left} before the first cleaning or without rows to anchor zero on")
+            counts.append(
+                f"{len(kept.times) - left} before the first cleaning or without rows to anchor zero on"
+            )
         wanted = ", ".join(self.model.symbols)
         self.collector.add(
             "survey-rows-missing",

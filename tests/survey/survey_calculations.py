@@ -27,9 +27,9 @@ givens:
   m_cold: {{value: 20 kg/s, is: cooling water flow, source: test, tolerance: {100 * STATED["m"]:g} %}}
   m_ref:  {{value: 20 kg/s, is: flow of the stated film, source: test}}
   T_hi:   {{value: 80 degC, is: process water inlet, source: test, tolerance: {STATED["T"]} K}}
-  T_ho:   {{value: 62 degC, is: process water outlet, source: test, tolerance: {STATED["T"]} K}}
+  T_ho:   {{value: 66.6 degC, is: process water outlet, source: test, tolerance: {STATED["T"]} K}}
   T_ci:   {{value: 22 degC, is: cooling water inlet, source: test, tolerance: {STATED["T"]} K}}
-  T_co:   {{value: 38 degC, is: cooling water outlet, source: test, tolerance: {STATED["T"]} K}}
+  T_co:   {{value: 34.1 degC, is: cooling water outlet, source: test, tolerance: {STATED["T"]} K}}
   h_o:    {{value: {SHELL_FILM} W/(m^2 K), is: shell film, source: test, tolerance: {100 * STATED["shell film"]:g} %}}
   R_fo:   {{value: 0.00035 m^2 K/W, is: allowance so far, source: test}}
 streams:
