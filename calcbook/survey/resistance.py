@@ -11,10 +11,11 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from calcbook.chain.checks import OUTSIDE, check_states
 from calcbook.chain.circuit import branch_coefficient
 from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.solve import Solution, solve
-from calcbook.chain.types import CLEAN, Chain, Group
+from calcbook.chain.types import CLEAN, Chain, ChainCheck, Group
 from calcbook.formulas import evaluate, parse_expression, write
 from calcbook.library.cards import Assignment, Limit
 from calcbook.library.operations import RelationOperation, Slopes, run
@@ -34,7 +35,8 @@ class Found:
     """What each row gives (NaN where it gives nothing): m² K/W, W/(m² K), and 1.
 
     ``closure`` is NaN throughout where only one stream shows its heat, ``factor`` one where no F is needed.
-    ``outside`` has each limit of the card with the rows that it does not hold for.
+    ``outside`` has each limit of the card with the rows that it does not hold for. ``beyond`` marks rows at
+    which a film's method leaves its range, ``methods`` are those with such limits that were used.
     """
 
     resistance: Array
@@ -43,6 +45,8 @@ class Found:
     closure: Array
     factor: Array
     outside: tuple[tuple[Limit, Array], ...]
+    beyond: Array
+    methods: tuple[str, ...]
 
     def part(self, places: Array) -> Found:
         """Some of the rows."""
@@ -53,6 +57,8 @@ class Found:
             self.closure[places],
             self.factor[places],
             tuple((limit, outside[places]) for limit, outside in self.outside),
+            self.beyond[places],
+            self.methods,
         )
 
 
@@ -109,8 +115,10 @@ def inputs_of(chain: Chain, columns: Mapping[str, Array]) -> dict[str, Array]:
 def resistances(chain: Chain, columns: Mapping[str, Array], loss: float) -> Found:
     """The fouling resistance of every row on the basis area; ``loss`` is the part that the hot stream loses."""
     way = _way(chain)
-    wanted = tuple(dict.fromkeys(name for name in way.bound.values() if name))
-    solution = solve(_only(chain, wanted), inputs_of(chain, columns), CLEAN, keep=wanted)
+    wanted = dict.fromkeys(name for name in way.bound.values() if name)
+    limits = _range_limits(chain)
+    asked = [name for limit in limits for name in limit.names]
+    solution = solve(_only(chain, wanted), inputs_of(chain, columns), CLEAN, keep={*wanted, *asked})
     count = len(next(iter(columns.values())))
     values = way.values(solution, loss, count)
     with np.errstate(all="ignore"):
@@ -123,7 +131,47 @@ def resistances(chain: Chain, columns: Mapping[str, Array], loss: float) -> Foun
     outside = tuple(
         (item.limit, np.broadcast_to(~_holds(item, values), (count,))) for item in way.program.limits
     )
-    return Found(told(way.program.result), told("U"), told("U_c"), closure, told("F"), outside)
+    beyond = np.zeros(count, dtype=bool)
+    methods: dict[str, None] = {}
+    for limit in limits:
+        used = limit.used(solution)
+        if used.any():
+            methods[limit.check.card] = None
+            beyond |= used & (check_states(limit.check, solution.values) == OUTSIDE)
+    return Found(
+        told(way.program.result), told("U"), told("U_c"), closure, told("F"), outside, beyond, tuple(methods)
+    )
+
+
+@dataclass(frozen=True)
+class _RangeLimit:
+    """A range or stop limit of one candidate of a film."""
+
+    branch: str
+    candidate: int
+    check: ChainCheck
+
+    @property
+    def names(self) -> tuple[str, ...]:
+        """The ids that the limit takes."""
+        counting = (name for one in self.check.counts_when for name in one.inputs.values())
+        return (*self.check.inputs.values(), *counting)
+
+    def used(self, solution: Solution) -> Array:
+        """The rows at which the film uses this candidate."""
+        return np.asarray(solution.chosen.get(self.branch, np.zeros((), int)) == self.candidate)
+
+
+def _range_limits(chain: Chain) -> tuple[_RangeLimit, ...]:
+    return tuple(
+        _RangeLimit(branch.name, number, check)
+        for group in (chain.inner, chain.outer)
+        for branch in group.branches
+        if branch.situation is not None
+        for number, candidate in enumerate(branch.candidates)
+        for check in candidate.checks
+        if check.limit.level in ("stop", "range")
+    )
 
 
 def _only(chain: Chain, wanted: Collection[str]) -> Chain:

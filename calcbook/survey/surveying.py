@@ -144,7 +144,7 @@ class _Survey:
         found = (
             resistances(self.chain, columns, self.loss)
             if len(places)
-            else Found(empty, empty, empty, empty, empty, ())
+            else Found(empty, empty, empty, empty, empty, (), empty.astype(bool), ())
         )
         self.reject(
             sieve,
@@ -153,6 +153,15 @@ class _Survey:
             "no coefficient from these figures",
             "",
             ~np.isfinite(found.resistance),
+        )
+        limits = f"range limits of {', '.join(found.methods)}" if found.methods else ""
+        self.reject(
+            sieve,
+            places,
+            "method range",
+            "figures at which a film's method is outside its range",
+            limits,
+            found.beyond if found.methods else None,
         )
         limit = self.survey.rules.closure
         unbalanced = np.abs(found.closure) > limit.value if limit is not None else None

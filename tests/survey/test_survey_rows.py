@@ -121,6 +121,18 @@ def test_a_rule_without_a_limit_says_that_it_is_not_applied(tmp_path: Path, whol
     assert limits["steady state"] == limits["heat balance closure"] == "not applied: no limit is stated"
 
 
+def test_a_row_at_which_a_method_leaves_its_range_is_rejected(tmp_path: Path, whole: list[list[str]]) -> None:
+    rows = [list(row) for row in whole]
+    # Re is about 58 000 at 18 kg/s, and must be 2300 for the film's method.
+    rows[200][5] = "0.6"
+    survey = SPOILED_SURVEY.replace("closure: 8 %, ", "").replace("flow ratio: 0.6 .. 1.4, ", "")
+    outcome = outcome_of(tmp_path, rows, survey.replace("range: 2 kg/s .. 30 kg/s, ", ""))
+    found = next(rule for rule in outcome.rules if rule.id == "method range")
+    assert (found.count, found.first) == (1, "row 201")
+    assert "gnielinski-1976" in found.limit
+    assert adds_up(outcome)
+
+
 def test_a_time_in_hours_gives_what_dates_give(tmp_path: Path, whole: list[list[str]]) -> None:
     by_date = outcome_of(tmp_path, whole)
     hours = [[f"{24 * number}", *row[1:]] for number, row in enumerate(whole)]
