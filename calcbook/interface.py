@@ -137,11 +137,12 @@ def _solved(calculation: Calculation, library: Library, collector: Collector) ->
     solved = analyse(chain, collector)
     if solved is None or collector:
         return None
-    solved = _surveyed(_followed(rated(solved)), collector)
-    if solved is None:
-        return None
+    solved = _followed(rated(solved))
     solved = _assessed(replace(solved, sweep=sweep_of(solved, axes, collector)), collector)
-    return replace(solved, flips=distances_to_flip(solved)) if not collector else None
+    if collector:
+        return None
+    solved = _surveyed(solved, collector)
+    return replace(solved, flips=distances_to_flip(solved)) if solved is not None else None
 
 
 def _followed(solved: Solved) -> Solved:

@@ -32,8 +32,8 @@ ORDER = (
     "calcfile",
     "chain",
     "rating",
-    "survey",
     "uncertainty",
+    "survey",
     "record",
     "links",
     "interface",
@@ -59,7 +59,7 @@ OWNERS = {
     "rich": {"commands", "book"},
     "platformdirs": {"properties", "book"},
     "markdown_it": {"record"},
-    "scipy": {"formulas", "chain", "survey", "uncertainty"},
+    "scipy": {"formulas", "chain", "uncertainty"},
     "numpy": {
         *(
             "formulas",

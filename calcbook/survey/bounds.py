@@ -8,28 +8,25 @@ parameters by the equations of the fit itself.
 
 from __future__ import annotations
 
-import math
-import re
 from collections.abc import Mapping
 from dataclasses import dataclass
 from statistics import NormalDist
 
 import numpy as np
 
-from calcbook.calcfile.calculation import Tolerance as GivenTolerance
 from calcbook.calcfile.survey import Survey
 from calcbook.chain.types import Chain
-from calcbook.library.cards import Accuracy
+from calcbook.faults import Collector
 from calcbook.quantities import Tolerance, read_tolerance
 from calcbook.survey.resistance import LOSS, METHOD
+from calcbook.uncertainty.accuracy import factor_from
+from calcbook.uncertainty.distributions import Rectangular
+from calcbook.uncertainty.figures import stated_figures
 
 Array = np.ndarray
 YEAR = 365.25 * 86400.0
 # 95 % of a normal distribution lie within so many standard uncertainties.
 NORMAL_95 = NormalDist().inv_cdf(0.975)
-RECTANGULAR = math.sqrt(3.0)
-# Mean absolute deviation to standard deviation of a normal distribution.
-OF_MEAN = math.sqrt(math.pi / 2.0)
 
 
 @dataclass(frozen=True)
@@ -56,69 +53,65 @@ def parts_of(
     columns: Mapping[str, Array],
     since_first: Array,
 ) -> tuple[list[Part], list[str]]:
-    """Every part that a tolerance is stated for, and the methods for which no accuracy is.
+    """Every part that a tolerance is stated for, and the methods for which no accuracy is, with the reason.
 
     ``slopes``, ``columns`` and ``since_first`` (s since the first row) belong to the same rows.
     """
-    parts = [*_givens(chain, slopes, columns), *_drifts(chain, survey, slopes, columns, since_first)]
+    methods, without = _methods(chain, slopes)
+    parts = [
+        *_givens(chain, slopes, columns),
+        *_drifts(chain, survey, slopes, columns, since_first),
+        *_heat_loss(survey, slopes),
+        *methods,
+    ]
+    return parts, without
+
+
+def _heat_loss(survey: Survey, slopes: Mapping[str, Array]) -> list[Part]:
     loss = survey.heat_loss
-    if loss is not None and loss.tolerance is not None and loss.tolerance.value > 0.0:
-        standard = loss.tolerance.value / RECTANGULAR
-        parts.append(
-            Part(
-                LOSS,
-                "heat loss of the hot stream",
-                f"{loss.value.text}, {loss.tolerance.text} either way",
-                standard,
-                False,
-                "",
-                "rectangular",
-                slopes[LOSS] * standard,
-            )
-        )
-    without = []
+    if loss is None or loss.tolerance is None or loss.tolerance.value == 0.0:
+        return []
+    law = Rectangular(loss.value.value, loss.tolerance.value)
+    title, tolerance = "heat loss of the hot stream", f"{loss.value.text}, {loss.tolerance.text} either way"
+    return [Part(LOSS, title, tolerance, law.standard, False, "", law.words, slopes[LOSS] * law.standard)]
+
+
+def _methods(chain: Chain, slopes: Mapping[str, Array]) -> tuple[list[Part], list[str]]:
+    parts, without = [], []
     for name in (name for name in slopes if name.startswith(METHOD)):
         card = chain.library.method(name.removeprefix(METHOD))
-        read = accuracy_standard(card.accuracy) if card.accuracy is not None else None
-        if read is None:
-            without.append(card.id)
+        factor = factor_from(card.accuracy)
+        if isinstance(factor, str):
+            without.append(f"{card.id} ({factor})")
             continue
-        standard, words = read
-        assert card.accuracy is not None
-        parts.append(
-            Part(
-                name,
-                f"factor on the film coefficient of {card.id}",
-                f"{card.accuracy.within}, {card.accuracy.coverage}",
-                standard,
-                True,
-                "",
-                words,
-                slopes[name] * standard,
-            )
-        )
+        law = factor.distribution
+        title = f"factor on the film coefficient of {card.id}"
+        errors = slopes[name] * law.standard
+        parts.append(Part(name, title, factor.rule, law.standard, True, "", law.words, errors))
     return parts, without
 
 
 def _givens(chain: Chain, slopes: Mapping[str, Array], columns: Mapping[str, Array]) -> list[Part]:
+    """The givens with a tolerance; their faults are told where the budget is made."""
     parts = []
-    for symbol, given in chain.calculation.givens.items():
-        item = chain.inputs[f"given/{symbol}"]
-        if given.tolerance is None or item.id not in slopes:
+    for one in stated_figures(chain, Collector()):
+        symbol, item = one.line.symbol, chain.inputs[one.id]
+        given = chain.calculation.givens[symbol]
+        if given.tolerance is None or one.id not in slopes:
             continue
         width = read_tolerance(given.tolerance.text, item.kind)
-        standard = width.half_width / _divisor(given.tolerance)
+        standard = one.standard / abs(item.value) if width.relative else one.standard
         sensor = ", bias of its sensor" if symbol in columns else ""
         parts.append(
             Part(
-                item.id,
+                one.id,
                 f"{given.meaning or symbol}{sensor}",
                 given.tolerance.text,
                 standard,
                 width.relative,
                 symbol,
-                given.tolerance.kind,
-                slopes[item.id] * standard * _scale(width, columns.get(symbol, np.asarray(item.value))),
+                one.distribution.words,
+                slopes[one.id] * standard * _scale(width, columns.get(symbol, np.asarray(item.value))),
             )
         )
     return parts
@@ -136,7 +129,7 @@ def _drifts(
         name = f"given/{symbol}"
         if column.drift is None or column.drift.half_width == 0.0 or name not in slopes:
             continue
-        standard = column.drift.half_width / RECTANGULAR
+        standard = Rectangular(0.0, column.drift.half_width).standard
         grown = slopes[name] * standard * _scale(column.drift, columns[symbol]) * since_first / YEAR
         parts.append(
             Part(
@@ -155,32 +148,6 @@ def _drifts(
 
 def _scale(width: Tolerance, figures: Array) -> Array:
     return np.abs(figures) if width.relative else np.ones(())
-
-
-def _divisor(tolerance: GivenTolerance) -> float:
-    """Half-width to standard uncertainty."""
-    if tolerance.kind == "rectangular":
-        return RECTANGULAR
-    return tolerance.factor if tolerance.kind == "expanded" else 1.0
-
-
-def accuracy_standard(accuracy: Accuracy) -> tuple[float, str] | None:
-    """The standard uncertainty of a method's factor, and how it was read from what its card states.
-
-    "17 % mean" is a mean absolute deviation of a normal distribution; "20 %" with "90 % of data" holds so
-    many of them; a bare per cent is taken as 95 % of a normal distribution. None where no figure is stated.
-    """
-    stated = re.match(r"\s*([0-9]+(?:\.[0-9]+)?) %", accuracy.within)
-    if stated is None:
-        return None
-    width = float(stated.group(1)) / 100.0
-    if "mean" in accuracy.within:
-        return width * OF_MEAN, "normal, from a mean absolute deviation"
-    covered = re.search(r"([0-9]+(?:\.[0-9]+)?) % of", accuracy.coverage)
-    if covered is not None and 0.0 < float(covered.group(1)) < 100.0:
-        share = float(covered.group(1)) / 100.0
-        return width / normal_quantile(0.5 + share / 2.0), f"normal, {covered.group(1)} % within"
-    return width / NORMAL_95, "normal, taken as 95 % within"
 
 
 def normal_quantile(probability: float) -> float:

@@ -9,8 +9,6 @@ from survey_calculations import true_figures, with_rows
 
 from calcbook.chain.outcome import Solved
 from calcbook.chain.survey_outcome import SurveyOutcome
-from calcbook.library.cards import Accuracy
-from calcbook.survey.bounds import accuracy_standard
 from calcbook.survey.resistance import resistances, slopes
 
 SEEDS = 100
@@ -99,20 +97,3 @@ def test_a_film_that_is_better_than_its_method_looks_like_less_fouling(solved: S
     foretold = -0.01 * slopes(solved.chain, plain, 0.0)["method gnielinski-1976"]
     # One per cent is no small step (1 % of the effect), and the rows' temperatures move with the film.
     assert seen == pytest.approx(foretold, rel=0.05)
-
-
-def stated(within: str, coverage: str) -> tuple[float, str] | None:
-    return accuracy_standard(Accuracy(within, coverage, "test", "published"))
-
-
-def test_the_accuracy_of_a_method_is_read_as_its_card_says_it() -> None:
-    # Quantiles of the normal distribution: 1.644854 at 95 %, 1.959964 at 97.5 %; sqrt(pi/2) = 1.253314.
-    for within, coverage, expected in (
-        ("20 %", "90 % of about 800 measured points", 0.20 / 1.644854),
-        ("25 %", "most data", 0.25 / 1.959964),
-        ("17 % mean", "30 fluids", 0.17 * 1.253314),
-    ):
-        found = stated(within, coverage)
-        assert found is not None
-        assert found[0] == pytest.approx(expected, rel=1e-6)
-    assert stated("a few per cent", "most data") is None
