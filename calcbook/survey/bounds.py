@@ -15,10 +15,11 @@ from statistics import NormalDist
 import numpy as np
 
 from calcbook.calcfile.survey import Survey
+from calcbook.chain.factors import FACTOR
 from calcbook.chain.types import Chain
 from calcbook.faults import Collector
 from calcbook.quantities import Tolerance, read_tolerance
-from calcbook.survey.resistance import LOSS, METHOD
+from calcbook.survey.resistance import LOSS
 from calcbook.uncertainty.accuracy import factor_from
 from calcbook.uncertainty.distributions import Rectangular
 from calcbook.uncertainty.figures import stated_figures
@@ -78,8 +79,8 @@ def _heat_loss(survey: Survey, slopes: Mapping[str, Array]) -> list[Part]:
 
 def _methods(chain: Chain, slopes: Mapping[str, Array]) -> tuple[list[Part], list[str]]:
     parts, without = [], []
-    for name in (name for name in slopes if name.startswith(METHOD)):
-        card = chain.library.method(name.removeprefix(METHOD))
+    for name in (name for name in slopes if name.startswith(FACTOR)):
+        card = chain.library.method(name.removeprefix(FACTOR))
         factor = factor_from(card.accuracy)
         if isinstance(factor, str):
             without.append(f"{card.id} ({factor})")

@@ -12,10 +12,10 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from calcbook.chain.checks import OUTSIDE, check_states
-from calcbook.chain.circuit import branch_coefficient
+from calcbook.chain.factors import with_factors
 from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.solve import Solution, solve
-from calcbook.chain.types import CLEAN, Chain, ChainCheck, Group
+from calcbook.chain.types import CLEAN, Chain, ChainCheck
 from calcbook.formulas import evaluate, parse_expression, write
 from calcbook.library.cards import Assignment, Limit
 from calcbook.library.operations import RelationOperation, Slopes, run
@@ -26,7 +26,7 @@ CARD = "fouling-from-plant-data"
 HOT, COLD, ONE_SIDE = "duty/hot/Q", "duty/cold/Q", "duty/Q"
 # What passes the wall of the hot stream's heat, where a part x of it goes to the surroundings.
 PASSES = parse_expression("Q_h*(1 - x)")
-METHOD, LOSS = "method ", "heat loss"
+LOSS = "heat loss"
 ONE = np.ones(())
 
 
@@ -190,10 +190,8 @@ def _holds(item: ProgramLimit, values: Mapping[str, Array]) -> Array:
 
 
 def slopes(chain: Chain, columns: Mapping[str, Array], loss: float) -> dict[str, Array]:
-    """Slopes of the resistance of rows in each input (by id), in `heat loss`, and in `method <card>`.
-
-    The last is the slope in the factor of a card's film coefficients, with the surface temperatures as they are.
-    """
+    """Slopes of the resistance of rows in each input and in each method's factor (by id), and in `heat loss`."""
+    chain = with_factors(chain)
     way, inputs = _way(chain), inputs_of(chain, columns)
     solution = solve(chain, inputs, CLEAN)
     count = len(next(iter(columns.values())))
@@ -209,31 +207,4 @@ def slopes(chain: Chain, columns: Mapping[str, Array], loss: float) -> dict[str,
         for key, slope in traced[way.bound[name]].items():
             found[key] = found.get(key, np.zeros(count)) + np.broadcast_to(local[name] * slope, (count,))
     found[LOSS] = np.broadcast_to(local["x"], (count,))
-    found.update(_method_slopes(chain, solution, count))
     return found
-
-
-def _method_slopes(chain: Chain, solution: Solution, count: int) -> dict[str, Array]:
-    """A film coefficient that is larger by a part lowers the clean resistance by that part of the film's."""
-    found: dict[str, Array] = {}
-    for group in (chain.inner, chain.outer):
-        resistance = np.broadcast_to(solution.values[chain.results[f"R {group.name}"]], (count,))
-        for branch in group.branches:
-            if branch.situation is None:
-                continue
-            share = _share(group, branch.name, chain, solution)
-            chosen = np.broadcast_to(solution.chosen.get(branch.name, np.zeros((), int)), (count,))
-            for number, candidate in enumerate(branch.candidates):
-                used = chosen == number
-                if used.any():
-                    name = METHOD + candidate.method.id
-                    found[name] = found.get(name, np.zeros(count)) + np.where(used, resistance * share, 0.0)
-    return found
-
-
-def _share(group: Group, branch: str, chain: Chain, solution: Solution) -> Array:
-    """The part of a side's coefficient that one of its branches gives."""
-    if len(group.branches) == 1:
-        return np.ones(())
-    whole = solution.values[chain.results[f"h {group.name}"]]
-    return np.asarray(solution.values[branch_coefficient(group, branch)] / whole)

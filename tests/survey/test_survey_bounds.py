@@ -94,6 +94,6 @@ def test_a_film_that_is_better_than_its_method_looks_like_less_fouling(solved: S
     seen = (
         resistances(solved.chain, better, 0.0).resistance - resistances(solved.chain, plain, 0.0).resistance
     )
-    foretold = -0.01 * slopes(solved.chain, plain, 0.0)["method gnielinski-1976"]
+    foretold = -0.01 * slopes(solved.chain, plain, 0.0)["factor/gnielinski-1976"]
     # One per cent is no small step (1 % of the effect), and the rows' temperatures move with the film.
     assert seen == pytest.approx(foretold, rel=0.05)
