@@ -9,6 +9,7 @@ from pathlib import Path
 import numpy as np
 from history import DAY, HEADS, SHELL_FILM, STATED, WALL, Truth, cells
 
+from calcbook.calcfile import Calculation
 from calcbook.chain.outcome import Solved
 from calcbook.faults import Collector
 from calcbook.interface import read, solve
@@ -90,6 +91,14 @@ def solved_survey(folder: Path, rows: list[list[str]], survey: str = SURVEY, coo
     return solve(read(path))
 
 
+def surveyed_alone(folder: Path, solved: Solved, rows: list[list[str]], survey: str = SURVEY) -> Solved:
+    """The survey of these rows on a unit that is solved already, without what a calculation is solved for besides."""
+    write_history(folder, rows)
+    path = folder / "trial.yaml"
+    path.write_text(COOLER + survey, encoding="utf-8")
+    return _surveyed(solved, read(path))
+
+
 def with_rows(solved: Solved, shown: dict) -> Solved:
     """A solved calculation with the survey of another history in place of its own."""
     columns = zip(*cells(shown), strict=True)
@@ -103,9 +112,12 @@ def with_history(solved: Solved, count: int, columns: dict[str, str]) -> Solved:
     assert calculation.survey is not None
     history = replace(calculation.survey.history, rows=count, columns=columns)
     survey = replace(calculation.survey, history=history)
-    chain = replace(solved.chain, calculation=replace(calculation, survey=survey))
+    return _surveyed(solved, replace(calculation, survey=survey))
+
+
+def _surveyed(solved: Solved, calculation: Calculation) -> Solved:
     collector = Collector()
-    found = surveyed(replace(solved, chain=chain), collector)
+    found = surveyed(replace(solved, chain=replace(solved.chain, calculation=calculation)), collector)
     collector.stop_if_any()
     assert found is not None
     return found

@@ -72,11 +72,11 @@ def test_what_is_wrong_by_the_same_amount_in_a_cycle_drops_out(name: str) -> Non
 
 @pytest.mark.parametrize("name", GROWTH)
 def test_the_covariance_is_that_of_repeated_draws(name: str) -> None:
-    draws = [fitted(name, rows_of(name, noise=4e-6, seed=seed)) for seed in range(100)]
+    draws = [fitted(name, rows_of(name, noise=4e-6, seed=seed)) for seed in range(60)]
     apart = np.array([found.parameters for found in draws])
     stated = np.mean([np.sqrt(np.diag(found.scatter)) for found in draws], axis=0)
-    # A standard deviation of 100 draws is itself known to 1/sqrt(200) = 7 %; three times that.
-    assert np.std(apart, axis=0) / stated == pytest.approx(np.ones(apart.shape[1]), abs=0.21)
+    # A standard deviation of 60 draws is itself known to 1/sqrt(120) = 9 %; three times that.
+    assert np.std(apart, axis=0) / stated == pytest.approx(np.ones(apart.shape[1]), abs=0.27)
 
 
 def test_rows_that_wander_together_widen_the_scatter() -> None:

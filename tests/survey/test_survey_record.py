@@ -8,7 +8,7 @@ from pathlib import Path
 
 import pytest
 from history import Truth, cells, drawn, history
-from survey_calculations import COOLER, SURVEY, solved_survey, write_history
+from survey_calculations import COOLER, SURVEY, solved_survey
 
 from calcbook.interface import read, record_text, solve, solve_file
 from calcbook.quantities import read_any
@@ -164,19 +164,3 @@ def test_a_calculation_without_a_survey_has_none(tmp_path: Path) -> None:
     solved = solve(read(path))
     assert solved.survey is None
     assert "Survey of plant data" not in record_text(solved)
-
-
-def test_a_long_history_is_read_column_by_column(tmp_path: Path, rows: list[list[str]]) -> None:
-    """More rows than are taken apart together, and columns that nothing asks for."""
-    from calcbook.calcfile.surveyfile import PIECE, read_history
-    from calcbook.faults import Collector, Place
-
-    many = [[f"{number}", "x, y", f"{number / 8}"] for number in range(PIECE + 7)]
-    write_history(tmp_path, many, ["t", "remark", "T"])
-    collector = Collector()
-    place = Place("trial.yaml")
-    found = read_history(tmp_path / "history.csv", {"t": place, "T": place}, place, collector)
-    collector.stop_if_any()
-    assert found is not None
-    assert found.rows == PIECE + 7
-    assert found.columns["T"].split("\n")[-1] == f"{(PIECE + 6) / 8}"

@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from pathlib import Path
 
 import numpy as np
 import pytest
 from history import DAY, Truth, cells, drawn, history, spoiled
-from survey_calculations import SURVEY, solved_survey
+from survey_calculations import SURVEY, surveyed_alone
 
 from calcbook.chain.outcome import Solved
 from calcbook.chain.survey_outcome import SurveyOutcome
@@ -17,9 +18,18 @@ TRUTH = Truth(errors=drawn(7))
 SPOILED_SURVEY = SURVEY.replace("steady state: 8 K", "steady state: 4.5 K")
 
 
-def outcome_of(folder: Path, rows: list[list[str]], survey: str = SPOILED_SURVEY) -> SurveyOutcome:
-    outcome = solved_survey(folder, rows, survey).survey
-    assert outcome is not None
+Outcomes = Callable[..., SurveyOutcome]
+
+
+@pytest.fixture
+def outcome_of(tmp_path: Path, solved: Solved) -> Outcomes:
+    """The survey of some rows: the unit is solved once for all tests."""
+
+    def outcome(rows: list[list[str]], survey: str = SPOILED_SURVEY) -> SurveyOutcome:
+        found = surveyed_alone(tmp_path, solved, rows, survey).survey
+        assert found is not None
+        return found
+
     return outcome
 
 
@@ -38,8 +48,8 @@ def whole() -> list[list[str]]:
     return cells(history(TRUTH, 7, rows=412, days=411.0))
 
 
-def test_every_spoiled_row_is_rejected_by_its_rule(tmp_path: Path, whole: list[list[str]]) -> None:
-    outcome = outcome_of(tmp_path, spoiled([list(row) for row in whole]))
+def test_every_spoiled_row_is_rejected_by_its_rule(outcome_of: Outcomes, whole: list[list[str]]) -> None:
+    outcome = outcome_of(spoiled([list(row) for row in whole]))
     found = counts(outcome)
     # As `spoiled` spoils them: four words and an empty cell, two stamps, two swapped pairs, two dead sensors.
     assert found["unreadable"] == 5
@@ -54,16 +64,16 @@ def test_every_spoiled_row_is_rejected_by_its_rule(tmp_path: Path, whole: list[l
     assert [(gap.begins, round(gap.length / DAY)) for gap in outcome.gaps] == [("2025-06-11 06:00", 15)]
 
 
-def test_the_rule_names_the_first_row_it_rejects(tmp_path: Path, whole: list[list[str]]) -> None:
+def test_the_rule_names_the_first_row_it_rejects(outcome_of: Outcomes, whole: list[list[str]]) -> None:
     rows = [list(row) for row in whole]
     rows[40][3] = "n/a"
     rows[20][3] = ""
-    outcome = outcome_of(tmp_path, rows)
+    outcome = outcome_of(rows)
     assert next(rule.first for rule in outcome.rules if rule.id == "unreadable") == "row 21"
 
 
 @pytest.mark.parametrize("seed", range(6))
-def test_no_row_is_dropped_in_silence(tmp_path: Path, whole: list[list[str]], seed: int) -> None:
+def test_no_row_is_dropped_in_silence(outcome_of: Outcomes, whole: list[list[str]], seed: int) -> None:
     draw = np.random.default_rng(seed)
     rows = [list(row) for row in whole]
     words = ["", "Bad", "NaN", "inf", "1e999", "12,5", "-273.5", "1_000", "0", "--", "74 degC", "٣٤"]
@@ -72,14 +82,14 @@ def test_no_row_is_dropped_in_silence(tmp_path: Path, whole: list[list[str]], se
     for _ in range(10):
         rows[draw.integers(len(rows))].append("one cell more")
     draw.shuffle(rows)
-    outcome = outcome_of(tmp_path, rows)
+    outcome = outcome_of(rows)
     assert outcome.rows == len(rows)
     assert adds_up(outcome)
 
 
-def test_the_order_of_the_rows_moves_nothing(tmp_path: Path, whole: list[list[str]]) -> None:
-    straight = outcome_of(tmp_path, whole)
-    turned = outcome_of(tmp_path, whole[::-1])
+def test_the_order_of_the_rows_moves_nothing(outcome_of: Outcomes, whole: list[list[str]]) -> None:
+    straight = outcome_of(whole)
+    turned = outcome_of(whole[::-1])
     assert turned.out_of_order == len(whole) - 1
     assert [one.value for one in turned.figures] == [one.value for one in straight.figures]
 
@@ -92,61 +102,67 @@ def test_negative_resistances_are_kept_and_counted(solved: Solved) -> None:
 
 
 def test_rows_before_the_first_cleaning_are_kept_and_not_fitted(
-    tmp_path: Path, whole: list[list[str]]
+    outcome_of: Outcomes, whole: list[list[str]]
 ) -> None:
     later = SPOILED_SURVEY.replace("    - {at: 2025-02-03 06:00, source: test}\n", "")
-    outcome = outcome_of(tmp_path, whole, later)
+    outcome = outcome_of(whole, later)
     assert outcome.before_cleaning == outcome.kept - outcome.fitted > 100
     assert adds_up(outcome)
 
 
-def test_a_cleaning_without_rows_for_its_zero_is_told(tmp_path: Path, whole: list[list[str]]) -> None:
+def test_a_cleaning_without_rows_for_its_zero_is_told(outcome_of: Outcomes, whole: list[list[str]]) -> None:
     more = SPOILED_SURVEY.replace("  zero:", "    - {at: 2026-01-10, source: test}\n  zero:")
     stamps = ("2026-01-1", "2026-01-2")
-    outcome = outcome_of(tmp_path, [row for row in whole if not row[0].startswith(stamps)], more)
+    outcome = outcome_of([row for row in whole if not row[0].startswith(stamps)], more)
     assert outcome.cycles[2].zero_rows == 0
     assert outcome.not_anchored == outcome.cycles[2].rows > 0
     assert adds_up(outcome)
 
 
-def test_zero_on_so_many_rows_is_zero_on_these_rows(tmp_path: Path, whole: list[list[str]]) -> None:
-    by_rows = outcome_of(tmp_path, whole, SPOILED_SURVEY.replace("over: 10 days", "rows: 6"))
+def test_zero_on_so_many_rows_is_zero_on_these_rows(outcome_of: Outcomes, whole: list[list[str]]) -> None:
+    by_rows = outcome_of(whole, SPOILED_SURVEY.replace("over: 10 days", "rows: 6"))
     assert [one.zero_rows for one in by_rows.cycles] == [6, 6]
 
 
-def test_a_rule_without_a_limit_says_that_it_is_not_applied(tmp_path: Path, whole: list[list[str]]) -> None:
+def test_a_rule_without_a_limit_says_that_it_is_not_applied(
+    outcome_of: Outcomes, whole: list[list[str]]
+) -> None:
     bare = "".join(line + "\n" for line in SPOILED_SURVEY.splitlines() if not line.startswith("  rules:"))
-    outcome = outcome_of(tmp_path, whole, bare)
+    outcome = outcome_of(whole, bare)
     limits = {rule.id: rule.limit for rule in outcome.rules}
     assert limits["steady state"] == limits["heat balance closure"] == "not applied: no limit is stated"
 
 
-def test_a_row_at_which_a_method_leaves_its_range_is_rejected(tmp_path: Path, whole: list[list[str]]) -> None:
+def test_a_row_at_which_a_method_leaves_its_range_is_rejected(
+    outcome_of: Outcomes, whole: list[list[str]]
+) -> None:
     rows = [list(row) for row in whole]
     # Re is about 58 000 at 18 kg/s, and must be 2300 for the film's method.
     rows[200][5] = "0.6"
     survey = SPOILED_SURVEY.replace("closure: 8 %, ", "").replace("flow ratio: 0.6 .. 1.4, ", "")
-    outcome = outcome_of(tmp_path, rows, survey.replace("range: 2 kg/s .. 30 kg/s, ", ""))
+    outcome = outcome_of(rows, survey.replace("range: 2 kg/s .. 30 kg/s, ", ""))
     found = next(rule for rule in outcome.rules if rule.id == "method range")
     assert (found.count, found.first) == (1, "row 201")
     assert "gnielinski-1976" in found.limit
     assert adds_up(outcome)
 
 
-def test_a_time_in_hours_gives_what_dates_give(tmp_path: Path, whole: list[list[str]]) -> None:
-    by_date = outcome_of(tmp_path, whole)
+def test_a_time_in_hours_gives_what_dates_give(outcome_of: Outcomes, whole: list[list[str]]) -> None:
+    by_date = outcome_of(whole)
     hours = [[f"{24 * number}", *row[1:]] for number, row in enumerate(whole)]
     survey = SPOILED_SURVEY.replace("{column: time}", "{column: time, unit: h}")
     survey = survey.replace("at: 2025-02-03 06:00", "at: 0 h").replace("at: 2025-08-27 06:00", "at: 205 days")
-    by_hour = outcome_of(tmp_path, hours, survey)
+    by_hour = outcome_of(hours, survey)
     assert [one.value for one in by_hour.figures] == pytest.approx(
         [one.value for one in by_date.figures], rel=1e-9
     )
     assert by_hour.first == "0 h"
 
 
-def test_units_of_a_column_change_its_text_and_nothing_else(tmp_path: Path, whole: list[list[str]]) -> None:
-    mixed = outcome_of(tmp_path, whole)
+def test_units_of_a_column_change_its_text_and_nothing_else(
+    outcome_of: Outcomes, whole: list[list[str]]
+) -> None:
+    mixed = outcome_of(whole)
     shown = history(TRUTH, 7, rows=412, days=411.0)
     rows = [list(row) for row in whole]
     for number, row in enumerate(rows):
@@ -155,7 +171,7 @@ def test_units_of_a_column_change_its_text_and_nothing_else(tmp_path: Path, whol
     survey = SPOILED_SURVEY.replace("TI-1113, unit: degF, range: 32 degF .. 122 degF", "TI-1113, unit: K")
     survey = survey.replace("TI-1114, unit: degF, range: 32 degF .. 176 degF", "TI-1114, unit: K")
     survey = survey.replace("unit: t/h, range: 7 t/h .. 110 t/h", "unit: kg/h")
-    plain = outcome_of(tmp_path, rows, survey)
+    plain = outcome_of(rows, survey)
     # The mixed texts have two decimals in degF and t/h: 0.003 K and 0.01 % in a row, less in the fit.
     assert [one.value for one in plain.figures] == pytest.approx(
         [one.value for one in mixed.figures], rel=2e-3
