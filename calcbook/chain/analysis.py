@@ -4,13 +4,14 @@ from __future__ import annotations
 
 import itertools
 import math
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
 
 from calcbook.calcfile.calculation import Criterion
 from calcbook.chain.allowance import largest_allowances
+from calcbook.chain.alternatives import alternatives, needs_temperatures
 from calcbook.chain.checks import apply_acceptances, evaluate_check, state_of_check
 from calcbook.chain.circuit import branch_coefficient
 from calcbook.chain.completing import completed
@@ -67,7 +68,6 @@ from calcbook.chain.types import (
     Layer,
     OpenItem,
     StreamState,
-    follows_temperature,
 )
 from calcbook.faults import Collector, nearest_names, shown
 from calcbook.library import vocabulary
@@ -759,7 +759,6 @@ class _Analysis:
     def _cross(self, base: CaseOutcome) -> tuple[CrossRow, ...]:
         """Every other method of a film's situation, put in its place and the circuit closed again."""
         rows = []
-        inputs = self.chain.case_inputs("")
         for group in (self.chain.inner, self.chain.outer):
             for branch in group.branches:
                 if branch.situation is None:
@@ -772,12 +771,12 @@ class _Analysis:
                 ]
                 order = {method: place for place, method in enumerate(branch.situation.methods)}
                 others.sort(key=lambda candidate: order.get(candidate.method.id, len(order)))
-                rows += [self._cross_row(branch, used, other, inputs, base) for other in others]
+                rows += self._cross_rows(branch, used, others, base)
                 rows += [
                     CrossRow(branch.name, method, "", "", False, math.nan, math.nan, math.nan, reason)
                     for method, reason in branch.unusable.items()
                 ]
-        return (*rows, *self._cross_gaps(inputs, base))
+        return (*rows, *self._cross_gaps(self.chain.case_inputs(""), base))
 
     def _cross_gaps(self, inputs: Mapping[str, np.ndarray], base: CaseOutcome) -> list[CrossRow]:
         """Every other method of a gap's situation, put in its place and the circuit closed again."""
@@ -787,69 +786,65 @@ class _Analysis:
                 used = chosen(way, base.solutions[SERVICE])
                 others = {part.method.id: part for part in (*way.candidates, *way.alternatives)}
                 others.pop(used.method.id, None)
-                rows += [
-                    self._cross_row(
-                        way, used, other, inputs, base, with_method(self.chain, layer, way, other)
-                    )
-                    for other in others.values()
-                ]
+                for other in others.values():
+                    reason = self._out_of_range(other, self._at_solution(other, base.solutions[SERVICE]))
+                    changed = with_method(self.chain, layer, way, other)
+                    solution = None if reason else solve(changed, inputs, SERVICE)
+                    rows.append(self._cross_row(way, used, other, reason, solution, base))
                 rows += [
                     CrossRow(way.name, method, "", "", False, math.nan, math.nan, math.nan, reason)
                     for method, reason in way.unusable.items()
                 ]
         return rows
 
+    def _cross_rows(
+        self, branch: Branch, used: Candidate, others: Sequence[Candidate], base: CaseOutcome
+    ) -> list[CrossRow]:
+        """A row for each method in place of the one that is used: what it gives, or why it is left out."""
+        left_out = [self._left_out(branch, other, base.solutions[SERVICE]) for other in others]
+        tried = [other for other, reason in zip(others, left_out, strict=True) if not reason]
+        solutions = iter(alternatives(self.chain, branch, tried))
+        return [
+            self._cross_row(branch, used, other, reason, None if reason else next(solutions), base)
+            for other, reason in zip(others, left_out, strict=True)
+        ]
+
     def _cross_row(
         self,
         branch: Branch,
         used: Candidate,
         other: Candidate,
-        inputs: Mapping[str, np.ndarray],
+        reason: str,
+        solution: Solution | None,
         base: CaseOutcome,
-        changed: Chain | None = None,
     ) -> CrossRow:
-        """One row of the cross-check; ``changed`` is the chain that has the other method in its place already."""
-        reference = base.results["U_service"].value
-        same = other.method.family == used.method.family
-
-        def row(coefficient: float, overall: float, difference: float, left_out: str) -> CrossRow:
-            method = other.method
-            return CrossRow(
-                branch.name,
-                method.id,
-                method.title,
-                method.family,
-                same,
-                coefficient,
-                overall,
-                difference,
-                left_out,
-            )
-
-        if (
-            changed is None
-            and not self.chain.has_temperatures
-            and needs_temperatures(self.chain, branch, other)
-        ):
-            return row(
-                math.nan,
-                math.nan,
-                math.nan,
-                "it needs the temperature of the surface, and one bulk temperature is not stated",
-            )
-        reason = self._out_of_range(other, self._at_solution(other, base.solutions[SERVICE]))
-        if reason:
-            return row(math.nan, math.nan, math.nan, reason)
-        if changed is not None:
-            solution = solve(changed, inputs, SERVICE)
-        else:
-            solution = solve(self.chain, inputs, SERVICE, {branch.name: other})
-        reason = (
-            self._out_of_range(other, solution) if bool(np.all(solution.converged)) else "does not close here"
+        """The row of one method: the solution with it in its place, or the reason why there is none."""
+        coefficient = overall = difference = math.nan
+        if solution is not None:
+            closes = bool(np.all(solution.converged))
+            reason = self._out_of_range(other, solution) if closes else "does not close here"
+            overall = solution.number(self.chain.results["U"])
+            difference = overall / base.results["U_service"].value - 1.0
+            if other.coefficient in solution.values:
+                coefficient = solution.number(other.coefficient)
+        method = other.method
+        return CrossRow(
+            branch.name,
+            method.id,
+            method.title,
+            method.family,
+            method.family == used.method.family,
+            coefficient,
+            overall,
+            difference,
+            reason,
         )
-        overall = solution.number(self.chain.results["U"])
-        coefficient = solution.number(other.coefficient) if other.coefficient in solution.values else math.nan
-        return row(coefficient, overall, overall / reference - 1.0, reason)
+
+    def _left_out(self, branch: Branch, other: Candidate, solution: Solution) -> str:
+        """Why a method is not tried in place of a film's own; empty where it is."""
+        if not self.chain.has_temperatures and needs_temperatures(self.chain, branch, other):
+            return "it needs the temperature of the surface, and one bulk temperature is not stated"
+        return self._out_of_range(other, self._at_solution(other, solution))
 
     def _at_solution(self, other: Candidate, solution: Solution) -> Solution:
         """A method's own figures at the surface that the used method gives: enough to see most ranges."""
@@ -1000,12 +995,6 @@ def criterion_met(criterion: Criterion, margin: Array | float) -> Array:
 
 
 # --- small helpers ----------------------------------------------------------------------------------
-
-
-def needs_temperatures(chain: Chain, branch: Branch, candidate: Candidate) -> bool:
-    """Whether a candidate put in place of a film's own follows the temperature of the surface."""
-    group = next(group for group in (chain.inner, chain.outer) if branch in group.branches)
-    return follows_temperature(group, {branch.name: candidate})
 
 
 def _names(element: Group | Layer) -> set[str]:

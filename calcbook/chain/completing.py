@@ -25,9 +25,15 @@ FIRST_PART = 0.3
 
 
 def completed(
-    chain: Chain, inputs: Mapping[str, Array], forced: Mapping[str, Candidate] | None = None
+    chain: Chain,
+    inputs: Mapping[str, Array],
+    forced: Mapping[str, Candidate] | None = None,
+    choices: Mapping[str, Array] | None = None,
 ) -> dict[str, Array]:
-    """The inputs with every open figure, each in the condition that it belongs to; NaN where none agrees."""
+    """The inputs with every open figure, each in the condition that it belongs to; NaN where none agrees.
+
+    ``forced`` and ``choices`` are those of ``solve``.
+    """
     missing = [item for item in chain.open_figures if item.id not in inputs]
     if not missing:
         return dict(inputs)
@@ -38,18 +44,27 @@ def completed(
         else np.broadcast_to(value, shape).reshape(-1)
         for name, value in inputs.items()
     }
-    found = _Passes(chain, flat, int(np.prod(shape, dtype=int)), forced or {}).found()
+    passes = _Passes(chain, flat, int(np.prod(shape, dtype=int)), forced or {}, choices or {})
+    found = passes.found()
     return {**inputs, **{name: value.reshape(shape) for name, value in found.items()}}
 
 
 class _Passes:
     """The open figures of some samples on their way."""
 
-    def __init__(self, chain: Chain, inputs: Mapping[str, Array], size: int, forced: Mapping[str, Candidate]):
+    def __init__(
+        self,
+        chain: Chain,
+        inputs: Mapping[str, Array],
+        size: int,
+        forced: Mapping[str, Candidate],
+        choices: Mapping[str, Array],
+    ):
         self.chain = chain
         self.inputs = inputs
         self.size = size
         self.forced = forced
+        self.choices = choices
         self.open = tuple(item for item in chain.open_figures if item.id not in inputs)
         self.static = frozenset(step.id for step in chain.steps)
 
@@ -94,7 +109,8 @@ class _Passes:
                 with np.errstate(all="ignore"):
                     run(self.chain.steps, values)
             else:
-                values = closed(self.chain, inputs, condition, self.forced, wanted).values
+                choices = {name: choice[active] for name, choice in self.choices.items()}
+                values = closed(self.chain, inputs, condition, self.forced, wanted, choices=choices).values
             given |= {name: values[name] for name in wanted}
         count = (len(active),)
         return np.array(

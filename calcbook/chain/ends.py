@@ -46,23 +46,6 @@ def end_checks(
         both = solve(one, given, condition)
         for number, place in enumerate(PLACES):
             if both.converged.reshape(-1)[number]:
-                checks = wall_checks(one, case, _sample(both, number))
+                checks = wall_checks(one, case, both.sample(number))
                 found += [replace(check, id=f"{check.id} {place}") for check in checks]
     return found
-
-
-def _sample(solution: Solution, number: int) -> Solution:
-    """One sample of a solution as a single record."""
-
-    def one(value: Array) -> Array:
-        # Tables of cards stand among the values and are no samples.
-        return value[number] if isinstance(value, np.ndarray) and value.ndim else value
-
-    return replace(
-        solution,
-        values={name: one(value) for name, value in solution.values.items()},
-        chosen={name: one(value) for name, value in solution.chosen.items()},
-        converged=one(solution.converged),
-        jumps={name: one(value) for name, value in solution.jumps.items()},
-        jump_sides={},
-    )

@@ -62,6 +62,22 @@ class Solution:
         """One figure of a single record."""
         return float(np.asarray(self.values[name]).ravel()[0])
 
+    def sample(self, number: int) -> Solution:
+        """One sample as the solution of a single record."""
+
+        def own(value: Array) -> Array:
+            # Tables of cards stand among the values and are no samples.
+            return np.asarray(value[number]) if isinstance(value, np.ndarray) and value.ndim else value
+
+        return Solution(
+            self.condition,
+            {name: own(value) for name, value in self.values.items()},
+            {name: own(choice) for name, choice in self.chosen.items()},
+            own(self.converged),
+            {name: own(mask) for name, mask in self.jumps.items()},
+            {name: (own(low), own(high)) for name, (low, high) in self.jump_sides.items()},
+        )
+
 
 def chosen(branch: Branch, solution: Solution) -> Candidate:
     """The candidate that a film used in a single record."""
@@ -76,6 +92,7 @@ def solve(
     forced: Mapping[str, Candidate] | None = None,
     keep: Collection[str] | None = None,
     thorough: bool = True,
+    choices: Mapping[str, Array] | None = None,
 ) -> Solution:
     """Solve a chain for one condition on SI arrays of its inputs (by id, broadcast together).
 
@@ -83,12 +100,13 @@ def solve(
     steps whose values are wanted; without it all are kept, which for many samples takes much memory. Figures
     that the file leaves open are found first, unless they stand in ``inputs``. A search over many samples is not
     ``thorough``: it gives up a sample after a few passes of Newton's method and brackets none, which takes thousands.
+    ``choices`` gives the number of a film's candidate for every sample, in place of its own choice.
     """
     if chain.open_figures:
         from calcbook.chain.completing import completed
 
-        inputs = completed(chain, inputs, forced)
-    return closed(chain, inputs, condition, forced, keep, thorough)
+        inputs = completed(chain, inputs, forced, choices)
+    return closed(chain, inputs, condition, forced, keep, thorough, choices)
 
 
 def closed(
@@ -98,6 +116,7 @@ def closed(
     forced: Mapping[str, Candidate] | None = None,
     keep: Collection[str] | None = None,
     thorough: bool = True,
+    choices: Mapping[str, Array] | None = None,
 ) -> Solution:
     """As ``solve``, for inputs that leave nothing open."""
     shape = np.broadcast_shapes(*(np.shape(value) for value in inputs.values()))
@@ -111,6 +130,7 @@ def closed(
             piece = slice(start, min(start + PIECE, size))
             part = {name: value[piece] if value.ndim else value for name, value in flat.items()}
             engine = Engine(chain, part, condition, forced or {}, 1 if shape == () else piece.stop - start)
+            engine.choices.update({name: choice[piece] for name, choice in (choices or {}).items()})
             engine.solve(thorough)
             joined.take(engine, piece, keep)
     return joined.solution()
@@ -451,10 +471,10 @@ class Engine:
 
     def choice(self, group: Group, branch: Branch, samples: Array, given: Mapping[str, Array]) -> Array:
         """The number of the candidate that acts, for each of some samples."""
-        if branch.name in self.forced or not branch.choice:
-            return np.zeros(len(samples), dtype=int)
         if branch.name in self.choices:
             choice = self.choices[branch.name][samples]
+        elif branch.name in self.forced or not branch.choice:
+            return np.zeros(len(samples), dtype=int)
         else:
             choice = self._choose(group, branch, samples, given)
         held = self.held_choice.get(branch.name)

@@ -197,3 +197,19 @@ def test_every_method_of_a_situation_closes_or_says_why(tmp_path, flow):
     assert len(solved.cross) > 15
     for row in solved.cross:
         assert "does not close" not in row.left_out or row.coefficient <= 0.0, row
+
+
+@pytest.mark.parametrize("states", [1, 2, 7, 8, 9, 40])
+def test_samples_of_few_and_of_many_pressures_are_those_asked_alone(states: int, tmp_path) -> None:
+    chain = chain_of(tmp_path, COOLER)
+    steps = chain.inner.branches[0].candidates[0].steps
+    operation = next(
+        step.operation for step in steps if getattr(step.operation, "property_name", "") == "density"
+    )
+    draw = np.random.default_rng(5)
+    pressure = draw.permutation(np.resize(np.linspace(2e5, 6e5, states), 90))
+    temperature = draw.uniform(290.0, 370.0, 90)
+    found = operation.value({"T": temperature, "p": pressure})
+    for place in (0, 1, 44, 89):
+        alone = operation.value({"T": np.asarray(temperature[place]), "p": np.asarray(pressure[place])})
+        assert found[place] == alone

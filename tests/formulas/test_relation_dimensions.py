@@ -106,3 +106,18 @@ def test_a_derivative_has_the_dimension_of_a_quotient(text):
 def test_a_symbol_without_dimension_is_a_missing_key():
     with pytest.raises(KeyError):
         dimension(parse_expression("x + 1"), {})
+
+
+def test_what_is_remembered_of_a_tree_belongs_to_the_dimensions_it_was_asked_with():
+    relation = parse_expression("x*y + z")
+    area, volume = base(2, 0, 0, 0, 0), base(3, 0, 0, 0, 0)
+    for _ in range(2):
+        assert dimension(relation, {"x": LENGTH, "y": LENGTH, "z": area}) == area
+        assert dimension(relation, {"x": LENGTH, "y": area, "z": volume}) == volume
+        with pytest.raises(RelationFault):
+            dimension(relation, {"x": LENGTH, "y": LENGTH, "z": LENGTH})
+    # New objects for every question: the memory of a tree does not grow without end, and does not err.
+    for power in range(1, 300):
+        asked = {"x": base(power, 0, 0, 0, 0), "y": base(1, 0, 0, 0, 0), "z": base(power + 1, 0, 0, 0, 0)}
+        assert dimension(relation, asked) == base(power + 1, 0, 0, 0, 0)
+    assert len(relation.tree.memory[dimension]) <= 64

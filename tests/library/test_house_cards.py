@@ -178,3 +178,12 @@ def test_a_card_that_no_calculation_uses_does_not_stop_others(book: Path) -> Non
 def test_the_page_of_a_house_card_says_so() -> None:
     shown = CliRunner().invoke(library_command, ["show", CARD, "--cards", str(CALCS / "cards")])
     assert shown.exit_code == 0 and "A book's own card: house method." in shown.output
+
+
+def test_a_built_in_card_is_read_once_whatever_the_book_and_a_house_card_by_its_book(book: Path) -> None:
+    one, other = Library(CALCS / "cards"), Library(book / "cards")
+    assert one.method("gnielinski-1976") is other.method("gnielinski-1976")
+    assert one.program("gnielinski-1976") is other.program("gnielinski-1976")
+    assert one.method(CARD) is not other.method(CARD)
+    assert one.names("methods") == other.names("methods")
+    assert CARD in one.names("methods") and CARD not in Library().names("methods")

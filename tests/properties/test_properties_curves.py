@@ -235,3 +235,18 @@ def test_a_polynomial_is_its_own_series(terms, width, part):
     sloped = chebyshev.evaluate(chebyshev.derivative(coefficients, low, high), low, high, at)
     # deriving multiplies rounding by up to the square of the count of nodes
     assert abs(sloped - polynomial.deriv()(at))[0] <= 28**2 * 1e-13 * scale
+
+
+@given(
+    st.lists(st.floats(-1e3, 1e3), min_size=1, max_size=28),
+    st.floats(250.0, 400.0),
+    st.floats(1.0, 300.0),
+    st.lists(st.floats(0.0, 1.0), min_size=2, max_size=9),
+)
+def test_one_sample_has_the_bits_it_has_among_others(coefficients, low, width, places):
+    # One sample goes in plain floats, several in arrays: both round each sum and product alike.
+    at = low + width * np.array(places)
+    several = chebyshev.evaluate(coefficients, low, low + width, at)
+    alone = [chebyshev.evaluate(coefficients, low, low + width, at[i : i + 1])[0] for i in range(at.size)]
+    assert np.array_equal(several, np.array(alone), equal_nan=True)
+    assert chebyshev.evaluate(coefficients, low, low + width, at[0].reshape(())).shape == ()
