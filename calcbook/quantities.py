@@ -1060,6 +1060,7 @@ def unit_factor(unit_text: str) -> tuple[float, Dimension]:
     return float(unit.factor), unit.dimension
 
 
+@functools.lru_cache(maxsize=4096)
 def in_unit(value_si: float, unit_text: str, point: bool = False) -> float:
     """A finite SI value expressed in a unit; ``point`` reads degC and degF as points of their scales.
 

@@ -621,7 +621,6 @@ class FilmScope:
             coefficient = self.with_method_factor(card, coefficient)
         if not coefficient:
             return None
-        steps = self.ancestors([coefficient])
         checks = self.checks(program, names)
         steps = self.ancestors([coefficient, *(bound for check in checks for bound in check.inputs.values())])
         return Candidate(

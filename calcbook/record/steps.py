@@ -92,19 +92,27 @@ class StepTexts:
         """The texts of one row of the chain."""
         step = row.step
         kind = step.kind
-        values = {
-            condition: self._values(step, condition, value)
-            for condition, value in ((CLEAN, row.clean), (SERVICE, row.service))
-        }
+        service = self._values(step, SERVICE, row.service)
+        clean = service if self._is_alike(row) else self._values(step, CLEAN, row.clean)
         return ChainLine(
             quantity=_quantity(step.title, step.symbol),
             relation=self.relation(step),
-            values=values[SERVICE],
+            values=service,
             clean=_shown_value(step, row.clean),
             service=_shown_value(step, row.service),
             unit=unit_text(kind.unit) if kind is not None else "1",
             basis=self._basis(step, row),
-            clean_values=values[CLEAN],
+            clean_values=clean,
+        )
+
+    def _is_alike(self, row: StepRow) -> bool:
+        """Whether a relation takes and gives the same figures clean and in service: its line is then the same."""
+        step = row.step
+        if not isinstance(step.operation, RelationOperation) or step.id in self.deposits:
+            return False
+        clean, service = (self.case.solutions[condition].values for condition in (CLEAN, SERVICE))
+        return row.clean == row.service and all(
+            _is_same(clean.get(bound), service.get(bound)) for bound in step.inputs.values()
         )
 
     def closing_line(self, name: str) -> ChainLine:
@@ -303,6 +311,13 @@ class StepTexts:
 def pressure_words(state: StreamState) -> str:
     """What stands for a pressure that the file does not state: a pure fluid is then saturated."""
     return SATURATED if state.fluid.text.kind == "name" else "not stated"
+
+
+def _is_same(one: object, other: object) -> bool:
+    """Whether two figures, or two tables, are one."""
+    if isinstance(one, np.ndarray) and isinstance(other, np.ndarray):
+        return bool(one == other)
+    return one is other
 
 
 def _celsius_note(kind: QuantityKind | None, clean: float | bool, service: float | bool) -> str:
