@@ -65,6 +65,8 @@ CLASHING_STARTS = ("stream ", "case ", "fluid ", "assumption ", "word ", "unread
 AT_PLACE = "at "
 # Beyond these sizes (SI) a figure is a slip of the keyboard; working with it only breaks the arithmetic.
 SMALLEST, LARGEST = 1e-12, 1e11
+# A fouling rate is a small resistance over the seconds of months: slow ones lie below what else is a slip.
+SMALLEST_RATE, RATE_UNIT = 1e-16, "m^2 K/J"
 # Names in the folder of the records that no calculation may have, and names that one system keeps for devices.
 PAGES = ("register.md", "library.md", "verification.md")
 DEVICES = frozenset(
@@ -279,13 +281,15 @@ class Reader:
         except QuantityFault as error:
             self.quantity_fault(node, error)
             return None
-        if quantity.value != 0.0 and not SMALLEST <= abs(quantity.value) <= LARGEST:
+        is_rate = quantity.dimension == unit_factor(RATE_UNIT)[1]
+        smallest = SMALLEST_RATE if is_rate else SMALLEST
+        if quantity.value != 0.0 and not smallest <= abs(quantity.value) <= LARGEST:
             self.collector.add(
                 "number-out-of-proportion",
                 node.place,
                 "no plant has a figure of this size",
                 found=shown(node.text),
-                expected=f"a figure between {SMALLEST:g} and {LARGEST:g} in SI units, or zero",
+                expected=f"a figure between {smallest:g} and {LARGEST:g} in SI units, or zero",
             )
             return None
         return quantity

@@ -29,6 +29,19 @@ class TimeRow:
 
 
 @dataclass(frozen=True, slots=True)
+class Turn:
+    """A verdict that turns on the way: its kind (criterion, limit, method, controlling term), its id and level, the
+    words before and after, and the first time known to have the second."""
+
+    kind: str
+    id: str
+    level: str
+    was: str
+    becomes: str
+    time: float
+
+
+@dataclass(frozen=True, slots=True)
 class ClosedForm:
     """A card that gives the interval in closed form, on figures of the chain; ``because`` says which."""
 
@@ -66,10 +79,12 @@ class OverTime:
 
     ``duty_lost`` is the time at which the margin of area over the duty falls to nothing: NaN with the words in
     ``duty_words`` where it does not, or where there is no duty. ``heat_basis`` says how the heat was found.
-    ``failed`` counts rows without an answer.
+    ``turns`` are the verdicts at the stated ends that change on the way, in the order of their times. ``failed``
+    counts rows without an answer.
     """
 
     rows: tuple[TimeRow, ...]
+    turns: tuple[Turn, ...]
     unit: str
     duty_lost: float
     duty_words: str

@@ -16,6 +16,7 @@ from calcbook.calcfile.in_service import CLEANED_UNIT, DUTY
 from calcbook.chain.growth_outcome import ClosedForm, Interval, OverTime, TimeRow
 from calcbook.chain.outcome import Result, Solved
 from calcbook.chain.pressure import drops, evaluate_pressure_drops
+from calcbook.chain.samples import Samples, evaluate_samples
 from calcbook.chain.solve import Solution, solve
 from calcbook.chain.types import SERVICE, Chain
 from calcbook.chain.variants import with_figures
@@ -23,6 +24,7 @@ from calcbook.formulas import evaluate, parse_expression
 from calcbook.library import evaluate_method, vocabulary
 from calcbook.rating.day_one import open_chain
 from calcbook.rating.summing import Summed, crossing, root
+from calcbook.rating.turns import turns
 
 Array = np.ndarray
 NAN = math.nan
@@ -97,6 +99,12 @@ class _Course:
             evaluate_pressure_drops(one, solution)
         return solution
 
+    def verdicts_at(self, times: Array) -> Samples:
+        """Every verdict of the chain at times."""
+        figures = {item.time: times for item in self.chain.growing}
+        one, given = with_figures(self.chain, self.chain.case_inputs(""), figures)
+        return evaluate_samples(one, given)
+
     def one(self, chain: Chain, name: str, times: Array) -> Array:
         """One figure at times; NaN where the chain has no answer."""
         return _row(self.at(chain, times, (name,)), name, times)
@@ -156,6 +164,7 @@ def _table(course: _Course) -> OverTime:
     rows = _rows(course, times, columns, _outlets(course, heats, times))
     return OverTime(
         rows,
+        turns(course.verdicts_at, times),
         _unit(course),
         lost,
         words,

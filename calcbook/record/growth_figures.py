@@ -19,6 +19,8 @@ def growth_figures(found: OverTime) -> Figures:
     for place, row in enumerate(found.rows, 1):
         yield from _row(f"row {place}", row, found.interval)
     kinds = vocabulary()
+    for number, turn in enumerate(found.turns, 1):
+        yield f"turn {number} / {turn.id}", turn.time, kinds["service time"]
     yield "duty lost", found.duty_lost, kinds["service time"]
     if found.interval is not None:
         yield "cleaning interval", found.interval.interval, kinds["cleaning interval"]

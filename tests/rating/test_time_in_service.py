@@ -231,6 +231,30 @@ def test_words_where_no_duty_is_lost(tmp_path: Path) -> None:
     assert small.over_time is not None and "does not carry" in small.over_time.duty_words
 
 
+def test_verdicts_turn_when_a_calculation_at_that_time_turns(tmp_path: Path) -> None:
+    """The margin of area turns when the duty is lost; the pressure drop is asked of the chain itself on both sides.
+
+    Two months of a row in 20^5 parts are 1.6 s.
+    """
+    criteria = "acceptance:\n  - {that: area_margin >= 0, source: s}\n  - {that: dp cold_service <= 37 kPa, source: s}\n"
+    found = over(tmp_path, COOLER + criteria)
+    by_id = {turn.id: turn for turn in found.turns}
+    assert list(by_id) == [turn.id for turn in sorted(found.turns, key=lambda turn: turn.time)]
+    first = by_id["criterion 1"]
+    assert (first.was, first.becomes) == ("met", "not met")
+    assert 0.0 <= first.time - found.duty_lost <= 2.0
+    second = by_id["criterion 2"].time
+    for seconds, met in ((second, False), (second - 2.0, True)):
+        at = solved(tmp_path, COOLER.replace("value: 6 months", f"value: {seconds!r} s") + criteria)
+        assert at.base.criteria[1].met is met
+    assert by_id["controlling term"].becomes == "scale"
+
+
+def test_no_verdict_turns_where_nothing_is_asked(tmp_path: Path) -> None:
+    found = over(tmp_path, plane(LINEAR.replace("2e-11", "2e-14"), TABLE))
+    assert found.turns == ()
+
+
 # --- the interval -------------------------------------------------------------------------------------
 
 

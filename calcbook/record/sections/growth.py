@@ -61,18 +61,39 @@ def time_blocks(page: Page) -> list[Block]:
         Heading(3, "Time in service"),
         Paragraph(
             "The unit from one cleaning on. Every term that grows starts from nothing there; what else fouls stays as"
-            f" stated. U and the margin stand at the stated ends; heat and outlets {found.heat_basis}. The limits of"
-            " section 9 are evaluated at the times that the terms state, not in this table."
+            f" stated. U and the margin stand at the stated ends; heat and outlets {found.heat_basis}. Section 9"
+            " stands at the times that the terms state."
             if found.rows and math.isfinite(found.rows[0].heat)
             else "The unit from one cleaning on. Every term that grows starts from nothing there; what else fouls stays"
-            " as stated. The limits of section 9 are evaluated at the times that the terms state, not in this table."
+            " as stated. Section 9 stands at the times that the terms state."
         ),
         Table(tuple(title for title, _ in columns), rows),
     ]
     if found.failed:
         blocks.append(Paragraph(f"{counted(found.failed, 'row has', 'rows have')} no answer of the circuit."))
     blocks.append(Paragraph(_duty_sentence(page, found)))
+    blocks += _turns(found)
     return blocks + (_interval(page, found, found.interval) if found.interval is not None else [])
+
+
+def _turns(found: OverTime) -> list[Block]:
+    """The verdicts at the stated ends that turn on the way."""
+    if not found.turns:
+        return [Paragraph("No criterion, limit, method or controlling term turns within the table.")]
+    rows = tuple(
+        (
+            turn.id,
+            turn.kind + (f", {turn.level}" if turn.level else ""),
+            turn.was,
+            turn.becomes,
+            _time(found, turn.time),
+        )
+        for turn in found.turns
+    )
+    return [
+        Paragraph("Verdicts at the stated ends that turn on the way, in the order of their times:"),
+        Table(("Verdict", "Kind", "Before", "Then", "From"), rows),
+    ]
 
 
 def _columns(page: Page, found: OverTime) -> list[Column]:
