@@ -50,17 +50,19 @@ def solve(calculation: Calculation, library: Library | None = None) -> Solved:
     return solved
 
 
-def solve_file(path: Path, name: str | None = None, above: tuple[Path, ...] = ()) -> Solved:
+def solve_file(
+    path: Path, name: str | None = None, above: tuple[Path, ...] = (), for_record: bool = True
+) -> Solved:
     """Read and solve a file, with the faults of both stages told at once.
 
-    ``above`` are the files whose links led here, so that a circle is found. Raises ``Faults`` and
-    ``NotConverged``.
+    ``above`` are the files whose links led here, so that a circle is found. What only a record shows (sweep,
+    distances to flip) is searched ``for_record`` alone. Raises ``Faults`` and ``NotConverged``.
     """
     collector = Collector()
     settings = _settings(path.parent, collector)
     resolve = links_of(path, settings, above)
     calculation = read_calculation(path, settings, collector, name, resolve)
-    solved = _solved(calculation, library_of(path.parent / HOUSE_CARDS), collector)
+    solved = _solved(calculation, library_of(path.parent / HOUSE_CARDS), collector, for_record)
     collector.stop_if_any()
     assert solved is not None
     return solved
@@ -104,7 +106,7 @@ def links_of(path: Path, settings: Settings, above: tuple[Path, ...] = ()) -> Li
                     )
                 ]
             )
-        return source_of(solve_file(source, source.name, here))
+        return source_of(solve_file(source, source.name, here, for_record=False))
 
     return Links(path.parent, output_of(path, settings), solve_source)
 
@@ -127,7 +129,9 @@ def source_of(solved: Solved) -> Source:
     )
 
 
-def _solved(calculation: Calculation, library: Library, collector: Collector) -> Solved | None:
+def _solved(
+    calculation: Calculation, library: Library, collector: Collector, for_record: bool = True
+) -> Solved | None:
     chain = build(calculation, library, collector)
     if chain is None:
         return None
@@ -137,12 +141,11 @@ def _solved(calculation: Calculation, library: Library, collector: Collector) ->
     solved = analyse(chain, collector)
     if solved is None or collector:
         return None
-    solved = _followed(rated(solved))
-    solved = _assessed(replace(solved, sweep=sweep_of(solved, axes, collector)), collector)
-    if collector:
-        return None
-    solved = _surveyed(solved, collector)
-    return replace(solved, flips=distances_to_flip(solved)) if solved is not None else None
+    solved = _surveyed(_assessed(_followed(rated(solved)), collector), collector)
+    if solved is None or collector or not for_record:
+        return solved
+    solved = replace(solved, sweep=sweep_of(solved, axes, collector))
+    return replace(solved, flips=distances_to_flip(solved)) if not collector else None
 
 
 def _followed(solved: Solved) -> Solved:

@@ -30,7 +30,7 @@ from calcbook.chain.completing import completed
 from calcbook.chain.findings import film_steps, known_or_none, stream_phases, stream_states, wall_limits
 from calcbook.chain.flips_outcome import CONTROLLING, CRITERION, LIMIT, METHOD
 from calcbook.chain.pressure import drops, evaluate_pressure_drops, law_choice
-from calcbook.chain.solve import Solution, solve
+from calcbook.chain.solve import Solution, conditions_of, solve_both
 from calcbook.chain.types import (
     CONDITIONS,
     SERVICE,
@@ -57,6 +57,7 @@ HELD, BROKEN, ACCEPTED, IDLE = range(len(LIMIT_WORDS))
 _CODE_OF_STATE = np.array([HELD, BROKEN, NO_VERDICT, IDLE])
 NO_CONTROLLING = "none"
 OPEN_CIRCUIT = "the circuit does not close"
+TURNED = "the heat flow turns round"
 
 
 @dataclass(frozen=True, eq=False)
@@ -127,19 +128,24 @@ def evaluate_samples(
     cases: Sequence[str] = ("",),
     case_of: Array | None = None,
     phases: Mapping[str, Sequence[str]] | None = None,
+    directions: Sequence[float] = (),
 ) -> Samples:
     """Solve samples (inputs by id, one row or one figure for all) clean and in service, with every verdict.
 
     ``case_of`` is the place in ``cases`` that each sample belongs to: acceptances may hold for one case only.
-    ``phases`` are the phases of streams by case: a sample in which one has another phase gets no answer. The
-    calculation's own cases must have solved without a fault.
+    ``phases`` are the phases of streams by case, ``directions`` the signs of the heat flow: a sample in which one
+    is another gets no answer. The calculation's own cases must have solved without a fault.
     """
     size = max(np.size(value) for value in inputs.values())
     belongs = case_of if case_of is not None else np.zeros(size, dtype=int)
     samples = Samples(np.zeros(size, dtype=int))
     inputs = completed(chain, inputs)
     with np.errstate(all="ignore"):
-        _mark_states(chain, bulk_values(chain, inputs), samples, belongs, phases or {})
+        values = bulk_values(chain, inputs)
+        _mark_states(chain, values, samples, belongs, phases or {})
+        if directions and follows_difference(chain):
+            difference = np.asarray(values[chain.inner.bulk]) - np.asarray(values[chain.outer.bulk])
+            samples.mark(np.sign(difference) != np.array(directions)[belongs], TURNED)
         samples.solved = np.flatnonzero(samples.missing == 0)
         if not len(samples.solved):
             return samples
@@ -148,15 +154,25 @@ def evaluate_samples(
                 name: value[samples.solved] if np.ndim(value) else value for name, value in inputs.items()
             }
         _solve(chain, inputs, cases, belongs[samples.solved], samples)
+    if directions and "heat_flow_service" in samples.results:
+        flow = np.sign(samples.results["heat_flow_service"].values)
+        samples.mark(flow != np.array(directions)[belongs[samples.solved]], TURNED, samples.solved)
     return samples
+
+
+def follows_difference(chain: Chain) -> bool:
+    """Whether the heat flows from the hotter bulk to the colder: no film refers to a third temperature."""
+    return chain.has_temperatures and all(
+        branch.reference == group.bulk for group in (chain.inner, chain.outer) for branch in group.branches
+    )
 
 
 def _solve(
     chain: Chain, inputs: Mapping[str, Array], cases: Sequence[str], case_of: Array, samples: Samples
 ) -> None:
-    solutions = {condition: solve(chain, inputs, condition, thorough=False) for condition in CONDITIONS}
-    for solution in solutions.values():
-        evaluate_pressure_drops(chain, solution)
+    both = solve_both(chain, inputs, thorough=False)
+    evaluate_pressure_drops(chain, both)
+    solutions = conditions_of(both)
     samples.results = result_figures(chain, solutions)
     verdicts = [
         *_criteria(chain, solutions, samples.results),

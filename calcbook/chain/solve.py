@@ -16,6 +16,7 @@ import numpy as np
 from calcbook.chain.circuit import branch_coefficient
 from calcbook.chain.types import (
     CLEAN,
+    SERVICE,
     SERVICE_FLAG,
     Branch,
     Candidate,
@@ -134,6 +135,44 @@ def closed(
             engine.solve(thorough)
             joined.take(engine, piece, keep)
     return joined.solution()
+
+
+def solve_both(chain: Chain, inputs: Mapping[str, Array], thorough: bool = True) -> Solution:
+    """Solve samples in one row (inputs by id, or one figure for all) clean and in service, in one call.
+
+    The first half of the solution is clean, the second in service: ``conditions_of`` parts them.
+    """
+    size = max(np.size(value) for value in inputs.values())
+    doubled = {name: np.concatenate([value, value]) if np.ndim(value) else value for name, value in inputs.items()}
+    doubled[SERVICE_FLAG] = np.repeat([0.0, 1.0], size)
+    return solve(chain, doubled, SERVICE, thorough=thorough)
+
+
+def conditions_of(both: Solution) -> dict[str, Solution]:
+    """The solutions clean and in service, from one of both."""
+    size = both.converged.size // 2
+    halves = {CLEAN: slice(0, size), SERVICE: slice(size, 2 * size)}
+    return {condition: _part(both, condition, half) for condition, half in halves.items()}
+
+
+def _part(solution: Solution, condition: str, samples: slice) -> Solution:
+    """Some samples of a solution."""
+
+    def cut(figures: Mapping[str, Array]) -> dict[str, Array]:
+        return {
+            name: value[samples] if isinstance(value, np.ndarray) and value.ndim else value
+            for name, value in figures.items()
+        }
+
+    sides = {name: (low[samples], high[samples]) for name, (low, high) in solution.jump_sides.items()}
+    return Solution(
+        condition,
+        cut(solution.values),
+        cut(solution.chosen),
+        solution.converged[samples],
+        cut(solution.jumps),
+        sides,
+    )
 
 
 def _flat(value: Array, shape: tuple[int, ...]) -> Array:
@@ -306,11 +345,13 @@ class Engine:
         return value if len(samples) == self.size else value[samples]
 
     def _clean_deposits(self) -> None:
-        if self.condition != CLEAN:
+        in_service = self.values[SERVICE_FLAG]
+        if in_service.ndim == 0 and in_service:
             return
         for element in self.chain.elements:
             if isinstance(element, Layer) and element.kind == "fouling":
-                self.values[element.resistance] = np.asarray(0.0)
+                dirty = self.values[element.resistance] if in_service.ndim else 0.0
+                self.values[element.resistance] = np.where(in_service, dirty, 0.0)
 
     def _fix(self) -> None:
         """Resistance in K/W of every element that does not follow its temperatures, and their sum."""

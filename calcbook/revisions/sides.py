@@ -259,7 +259,7 @@ def _word(node: MappingNode, key: str) -> str:
 
 
 def _solved_side(path: Path, called: str, state: str, keeper: object = None) -> Side:
-    solved = solve_file(path, called)
+    solved = solve_file(path, called, for_record=False)
     document = read_file(path, called)
     calculation = solved.chain.calculation
     label = f"{calculation.number}, revision {calculation.revision}"

@@ -41,19 +41,24 @@ Group = tuple[str, ...]
 KNOWN, KNOWN_OF_CHANGE = 1e-9, 1e-4
 # Where a figure stands at a limit already, next to no change flips it.
 BEST_KNOWN = 1e-12
+# What flips at zero itself does so at no figure above it: so near, relative to the present figure, is near enough.
+KNOWN_AT_ZERO = 1e-6
 # Printed figures have so many digits, and more where the change would have fewer than this many.
 PRINTED_DIGITS, CHANGE_DIGITS, MOST_DIGITS = 6, 4, 10
 TYPED_DIGITS = 12
 MOST_ROUNDS = 16
 # How far beside an interpolated place an interval is divided, in parts of the interval: at first, then again.
 FIRST_PARTS = (1e-4, 3e-3, 0.06)
-NEXT_PARTS = (1e-5, 1e-3, 0.03)
+NEXT_PARTS = (1e-3, 0.03)
 STATE_PARTS = (1e-3, 0.03)
 # The place itself is enclosed by this part of how well it must be known.
 CLOSE = 0.3
 # Samples on either side of an interval that tell where a margin passes zero in it.
 AROUND = 3
-EVENLY_WITHOUT, EVENLY_AT_END, EVENLY_FOR_STATES = 15, 7, 3
+EVENLY_WITHOUT, EVENLY_AT_END, EVENLY_FOR_STATES = 15, 4, 3
+# Places of an interval that differ by less than this part of it are divided as one.
+ALIKE = 0.03
+LARGEST_LOGARITHM = 100.0
 INTERPOLATED_ROUNDS, END_ROUNDS = 2, 2
 
 
@@ -76,6 +81,7 @@ class _Line:
     now: float
     figures: Array
     places: Array
+    brackets: tuple[_Bracket, ...] | None = None
 
     @property
     def id(self) -> str:
@@ -88,6 +94,7 @@ class _Line:
         self.places = np.concatenate([self.places, np.arange(first_place, first_place + len(added))])
         order = np.argsort(np.abs(self.figures - self.now), kind="stable")
         self.figures, self.places = self.figures[order], self.places[order]
+        self.brackets = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -130,6 +137,8 @@ class _Table:
     missing: Array = field(default_factory=lambda: np.empty(0, dtype=int))
     reasons: list[str] = field(default_factory=lambda: [""])
     margins: dict[int, Array] = field(default_factory=dict)
+    limit_rows: Array = field(default_factory=lambda: np.empty(0, dtype=bool))
+    stop_rows: Array = field(default_factory=lambda: np.empty(0, dtype=bool))
 
     def takes(self, samples: Samples) -> int:
         """Add a batch; the place of its first sample."""
@@ -143,6 +152,10 @@ class _Table:
             if key in samples.verdicts:
                 codes[row, start:] = samples.codes(key)
         self.codes = codes
+        self.limit_rows = np.array([key[0] == LIMIT for key in self.keys])
+        self.stop_rows = np.array(
+            [self.verdict(row, samples).level == "stop" for row in range(len(self.keys))]
+        )
         names = {reason: self._reason(reason) for reason in samples.reasons}
         renamed = np.array([names[reason] for reason in samples.reasons])
         self.missing = np.concatenate([self.missing, renamed[samples.missing]])
@@ -167,10 +180,10 @@ class _Table:
             found = self.margins[row] = np.hstack(padded)
         return found
 
-    def verdict(self, row: int) -> Verdicts:
+    def verdict(self, row: int, *more: Samples) -> Verdicts:
         """A verdict with its words, from the first batch that has it."""
         key = self.keys[row]
-        return next(batch.verdicts[key] for batch in self.batches if key in batch.verdicts)
+        return next(batch.verdicts[key] for batch in (*self.batches, *more) if key in batch.verdicts)
 
 
 class _Search:
@@ -180,11 +193,11 @@ class _Search:
         self.names = tuple(case.name for case in cases)
         self.base = {name: np.array([case.inputs[name] for case in cases]) for name in self.chain.inputs}
         self.phases = self._phases()
-        self.flow_directions = np.array(
-            [np.sign(case.results["heat_flow_service"].value) for case in cases]
-            if "heat_flow_service" in cases[0].results
-            else []
-        )
+        self.directions = [
+            float(np.sign(case.results["heat_flow_service"].value))
+            for case in cases
+            if "heat_flow_service" in case.results
+        ]
         self.table = _Table()
         self.lines: list[_Line] = []
         self.best: dict[Group, _Bracket] = {}
@@ -261,11 +274,7 @@ class _Search:
             start += len(figures)
         if all(value.ndim == 0 for value in inputs.values()):
             inputs = {name: np.full(len(case_of), value) for name, value in inputs.items()}
-        samples = evaluate_samples(self.chain, inputs, self.names, case_of, self.phases)
-        if "heat_flow_service" in samples.results:
-            flow = np.sign(samples.results["heat_flow_service"].values)
-            turned = flow != self.flow_directions[case_of[samples.solved]]
-            samples.mark(turned, "the heat flow turns round", samples.solved)
+        samples = evaluate_samples(self.chain, inputs, self.names, case_of, self.phases, self.directions)
         return self.table.takes(samples) + ahead
 
     def _phases(self) -> dict[str, tuple[str, ...]]:
@@ -299,7 +308,9 @@ class _Search:
         """The intervals that may hold the nearest flip of their group and are not known well enough."""
         groups: dict[Group, list[_Bracket]] = {}
         for line in self.lines:
-            for bracket in self._first_flips(line):
+            if line.brackets is None:
+                line.brackets = tuple(self._first_flips(line))
+            for bracket in line.brackets:
                 groups.setdefault(self._group(bracket), []).append(bracket)
         self.best = {}
         found = []
@@ -334,38 +345,27 @@ class _Search:
         codes = self.table.codes[:, line.places[: end + 1]]
         base = codes[:, :1]
         other = (codes >= 0) & (base >= 0) & (codes != base)
-        rows = self._limit_rows()
+        rows, stops = self.table.limit_rows, self.table.stop_rows
         other[rows] &= codes[rows] != IDLE
         other[rows] &= (base[rows] != IDLE) | (codes[rows] == BROKEN)
         if codes.shape[1] > end:
-            stops = self._stop_rows()
             other[:, end] &= stops & (codes[:, end] == BROKEN)
         for row in np.flatnonzero(other.any(axis=1)):
             after = int(np.argmax(other[row]))
             inside, outside = line.figures[after - 1 : after + 1].tolist()
             yield _Bracket(line, int(row), after - 1, inside, outside, int(codes[row, after]))
 
-    def _limit_rows(self) -> Array:
-        return np.array([key[0] == LIMIT for key in self.table.keys])
-
-    def _stop_rows(self) -> Array:
-        return np.array(
-            [
-                key[0] == LIMIT and self.table.verdict(row).level == "stop"
-                for row, key in enumerate(self.table.keys)
-            ]
-        )
-
     # -- new figures --------------------------------------------------------------------------------
 
     def _between(self, bracket: _Bracket, number: int) -> list[float]:
-        """Figures that divide an interval."""
+        """Figures that divide an interval, and those that would be printed of the flip in it."""
         line, low, high = bracket.line, bracket.inside, bracket.outside
-        places = self._crossings(bracket)
+        width = high - low
+        places = self._crossings(bracket, ALIKE * abs(width) if number == 0 else 0.0)
         if line.whole:
             return _whole_between(low, high, places)
-        width = high - low
-        figures = []
+        figures: list[float] = []
+        printed: list[float] = []
         if not places or number >= INTERPOLATED_ROUNDS:
             # Nothing continuous decides, or what decides jumps.
             count = EVENLY_FOR_STATES if line.changes_state else EVENLY_WITHOUT
@@ -380,20 +380,24 @@ class _Search:
             if number:
                 close = CLOSE * _resolution(place, line.now)
                 for enclosing in (place - close, place + close):
-                    figures += [enclosing, *_Printing(line, enclosing, self._given(line)).figures()]
-        return [figure for figure in figures if min(low, high) < figure < max(low, high)]
+                    figures.append(enclosing)
+                    printed += _Printing(line, enclosing, self._given(line)).figures()
+        return [figure for figure in figures if min(low, high) < figure < max(low, high)] + printed
 
-    def _crossings(self, bracket: _Bracket) -> list[float]:
-        """Where the margins of a verdict pass zero within an interval, by what the samples around it tell."""
+    def _crossings(self, bracket: _Bracket, alike: float) -> list[float]:
+        """Where the margins of a verdict pass zero within an interval, by what the samples around it tell.
+
+        A margin is taken as a smooth curve of the figure, of its logarithm, and on the nearer side alone (it may
+        have a kink where it passes zero); places that are ``alike`` count once.
+        """
         line = bracket.line
         around = slice(max(bracket.before - AROUND, 0), bracket.before + 2 + AROUND)
         margins = self.table.margin(bracket.row)[:, line.places[around]]
         figures = line.figures[around].tolist()
-        by_logarithm = line.item.kind.scale != "point" and min(figures) > 0.0
-        if by_logarithm:
-            figures = [math.log(figure) for figure in figures]
         at = bracket.before - around.start
-        found = []
+        low, high = sorted((bracket.inside, bracket.outside))
+        least = max(alike, CLOSE * _resolution(bracket.outside, line.now))
+        found: list[float] = []
         for margin in margins.tolist():
             first, second = margin[at], margin[at + 1]
             if (
@@ -402,12 +406,11 @@ class _Search:
                 or first == second
             ):
                 continue
-            low, high = sorted(figures[at : at + 2])
-            known = [place for place, figure in enumerate(margin) if math.isfinite(figure)]
-            crossing = _interpolated([margin[place] for place in known], [figures[place] for place in known])
-            if not low < crossing < high:
-                crossing = figures[at] - first * (figures[at + 1] - figures[at]) / (second - first)
-            found.append(math.exp(crossing) if by_logarithm else crossing)
+            straight = bracket.inside - first * (bracket.outside - bracket.inside) / (second - first)
+            guesses = [*_curved(margin, figures), *_curved(margin[: at + 1], figures[: at + 1])]
+            for guess in [guess for guess in guesses if low < guess < high] or [straight]:
+                if all(abs(guess - other) > least for other in found):
+                    found.append(guess)
         return found
 
     def _before_end(self, line: _Line) -> list[float]:
@@ -529,8 +532,23 @@ class _Search:
 
 def _resolution(figure: float, now: float) -> float:
     """How well a figure at which a verdict flips is to be known."""
+    if figure == 0.0:
+        return KNOWN_AT_ZERO * abs(now)
     wanted = min(KNOWN * abs(figure), KNOWN_OF_CHANGE * abs(figure - now))
     return max(wanted, BEST_KNOWN * max(abs(figure), abs(now)))
+
+
+def _curved(margins: list[float], figures: list[float]) -> list[float]:
+    """Where a margin is zero, as a curve of the figure and of its logarithm."""
+    known = [place for place, margin in enumerate(margins) if math.isfinite(margin)]
+    margins, figures = [margins[place] for place in known], [figures[place] for place in known]
+    if len(known) < 2:
+        return []
+    found = [_interpolated(margins, figures)]
+    if min(figures) > 0.0:
+        logarithm = _interpolated(margins, [math.log(figure) for figure in figures])
+        found.append(math.exp(logarithm) if logarithm < LARGEST_LOGARITHM else math.nan)
+    return found
 
 
 def _interpolated(margins: list[float], figures: list[float]) -> float:
