@@ -24,7 +24,7 @@ Array = np.ndarray
 MAXIMUM_PASSES = 60
 # A search over many samples gives up after so many (most circuits close in four to seven), and sooner where a law
 # has no value, or a worse one, so many times running.
-FEW_PASSES = 10
+FEW_PASSES = 8
 FEW_HALVINGS = 2
 # The step that remains, judged from the last two, relative to the unknowns.
 STEP_TOLERANCE = 1e-15

@@ -57,10 +57,14 @@ class Searched:
 
 @dataclass(frozen=True, slots=True)
 class Flips:
-    """Every distance to flip, nearest first within its kind, and the ranges that were searched."""
+    """Every distance to flip, nearest first within its kind, and the ranges that were searched.
+
+    ``unsettled`` names in words what flips somewhere, but at no figure with a few digits.
+    """
 
     flips: tuple[Flip, ...]
     searched: tuple[Searched, ...]
+    unsettled: tuple[str, ...] = ()
 
     def of_kind(self, kind: str) -> tuple[Flip, ...]:
         """The flips of one kind, nearest first."""

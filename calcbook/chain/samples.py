@@ -402,6 +402,8 @@ def _mark_states(
             inner, outer = np.asarray(values[before.diameter]), np.asarray(values[after.diameter])
             samples.mark(~((outer > inner) & (inner > 0.0)), "the wall is turned inside out")
     for state in chain.streams.values():
+        if state.temperature not in values:
+            continue
         states, place = stream_states(state, values)
         words = [_state_fault(state, *figures) for figures in states]
         for reason in dict.fromkeys(word for word in words if word):

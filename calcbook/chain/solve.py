@@ -143,7 +143,9 @@ def solve_both(chain: Chain, inputs: Mapping[str, Array], thorough: bool = True)
     The first half of the solution is clean, the second in service: ``conditions_of`` parts them.
     """
     size = max(np.size(value) for value in inputs.values())
-    doubled = {name: np.concatenate([value, value]) if np.ndim(value) else value for name, value in inputs.items()}
+    doubled = {
+        name: np.concatenate([value, value]) if np.ndim(value) else value for name, value in inputs.items()
+    }
     doubled[SERVICE_FLAG] = np.repeat([0.0, 1.0], size)
     return solve(chain, doubled, SERVICE, thorough=thorough)
 

@@ -46,10 +46,12 @@ KNOWN_AT_ZERO = 1e-6
 # Printed figures have so many digits, and more where the change would have fewer than this many.
 PRINTED_DIGITS, CHANGE_DIGITS, MOST_DIGITS = 6, 4, 10
 TYPED_DIGITS = 12
+# A printed figure that does not hold is tried with one digit more, so many times.
+MOST_TRIES = 5
 MOST_ROUNDS = 16
 # How far beside an interpolated place an interval is divided, in parts of the interval: at first, then again.
 FIRST_PARTS = (1e-4, 3e-3, 0.06)
-NEXT_PARTS = (1e-3, 0.03)
+NEXT_PARTS = (2e-3,)
 STATE_PARTS = (1e-3, 0.03)
 # The place itself is enclosed by this part of how well it must be known.
 CLOSE = 0.3
@@ -210,10 +212,10 @@ class _Search:
             if not wanted:
                 break
             self._evaluate(wanted)
-        found = self._reported()
+        found, unsettled = self._reported()
         order = {kind: place for place, kind in enumerate((CRITERION, LIMIT, METHOD, CONTROLLING))}
         found.sort(key=lambda flip: (order[flip.kind], float(f"{flip.steps:.6g}")))
-        return Flips(tuple(found), tuple(self._searched()))
+        return Flips(tuple(found), tuple(self._searched()), unsettled)
 
     # -- samples ------------------------------------------------------------------------------------
 
@@ -281,7 +283,7 @@ class _Search:
         """The phase of every stream in each case, where the file does not state it."""
         found = {}
         for state in self.chain.streams.values():
-            if not state.phase:
+            if not state.phase and state.temperature in self.cases[0].solutions[SERVICE].values:
                 known = [case.solutions[SERVICE].values for case in self.cases]
                 found[state.name] = tuple(stream_phases(state, values)[0][0][0] for values in known)
         return found
@@ -436,22 +438,31 @@ class _Search:
 
     # -- what is reported ---------------------------------------------------------------------------
 
-    def _reported(self) -> list[Flip]:
-        """The nearest flip of each group, with its printed figure evaluated."""
+    def _reported(self) -> tuple[list[Flip], tuple[str, ...]]:
+        """The nearest flip of each group with its printed figure evaluated; and in words those without one.
+
+        A verdict that is another one at a figure, but not at any printed figure beside it, has none.
+        """
         self._open_brackets()
         waiting = {
             group: _Printing(bracket.line, bracket.outside, self._given(bracket.line))
             for group, bracket in self.best.items()
         }
         printed: dict[Group, _Printing] = {}
-        while waiting:
+        for _ in range(MOST_TRIES):
             self._evaluate_printed(list(waiting.values()))
             for group, item in list(waiting.items()):
                 if self._holds(self.best[group], item):
                     printed[group] = waiting.pop(group)
                 else:
                     item.digits += 1
-        return [self._flip(bracket, printed[group]) for group, bracket in self.best.items()]
+        flips = [self._flip(self.best[group], item) for group, item in printed.items()]
+        return flips, tuple(self._words(self.best[group]) for group in waiting)
+
+    def _words(self, bracket: _Bracket) -> str:
+        _, name, condition = self.table.keys[bracket.row]
+        case = self.names[bracket.line.case]
+        return ", ".join(word for word in (bracket.line.item.symbol, case, name, condition) if word)
 
     def _evaluate_printed(self, items: list[_Printing]) -> None:
         wanted: dict[int, set[float]] = {}
@@ -524,7 +535,7 @@ class _Search:
     def _last(self, line: _Line, unit: str) -> tuple[float, str]:
         """The farthest figure of a line with an answer, in a unit, and what ends the search behind it."""
         end = self._end(line)
-        figure = in_unit(float(line.figures[end - 1]), unit or "1", line.item.kind.scale == "point")
+        figure = in_unit(float(line.figures[max(end - 1, 0)]), unit or "1", line.item.kind.scale == "point")
         if end == len(line.places):
             return figure, line.reach.end
         return figure, self.table.reasons[self.table.missing[line.places[end]]]

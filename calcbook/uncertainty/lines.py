@@ -43,7 +43,7 @@ SHARES = frozenset(
 # Without a flow there is no film: the search stays above zero.
 FLOWS = frozenset(("mass flow", "volume flow", "speed"))
 # Figures on one side of the present one, and how near and how far: a figure by its logarithm, a temperature in K.
-POINTS = 18
+POINTS = 22
 NEAREST, FACTOR = 0.003, 100.0
 NEAREST_KELVIN, FARTHEST_KELVIN = 0.1, 200.0
 # A figure that is another state of a fluid costs its properties anew: fewer figures, less far.

@@ -38,6 +38,11 @@ def flips(page: Page) -> list[Block]:
     blocks: list[Block] = [Heading(3, "Distance to flip"), Paragraph(words)]
     for kind in TITLES:
         blocks += _kind(page, found, kind)
+    if found.unsettled:
+        words = (
+            "A verdict is another one somewhere in the range searched, but no figure could be settled, for: "
+        )
+        blocks.append(Paragraph(words + "; ".join(found.unsettled) + "."))
     return [*blocks, Heading(4, "Range searched"), _searched(found)]
 
 
