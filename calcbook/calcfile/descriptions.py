@@ -535,6 +535,7 @@ UNCERTAINTY = Description(
             "choice",
             choices=("1", "2"),
         ),
+        Key("case", "the case whose results are meant; absent: the base case", "name"),
         Key("correlation", "givens whose errors go together", "list", of=CORRELATION),
     ),
 )

@@ -209,7 +209,7 @@ class Reader:
             duty=duty,
             fouling_specified=specified,
             uncertainty=read_uncertainty(
-                self.fields.node("uncertainty"), (*givens, *self.broken), self.collector
+                self.fields.node("uncertainty"), (*givens, *self.broken), cases, self.collector
             ),
             time_in_service=time_in_service,
             cleaning=cleaning,

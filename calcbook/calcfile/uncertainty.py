@@ -47,12 +47,13 @@ class UncertaintyText:
     digits: int
     correlations: tuple[Correlation, ...]
     place: Place
+    case: str = ""
 
 
 def read_uncertainty(
-    node: Node | None, symbols: Collection[str], collector: Collector
+    node: Node | None, symbols: Collection[str], cases: Collection[str], collector: Collector
 ) -> UncertaintyText | None:
-    """Read `uncertainty:`; ``symbols`` are the givens of the file. None where it is not stated."""
+    """Read `uncertainty:`; ``symbols`` are the givens of the file, ``cases`` its cases. None where not stated."""
     if node is None:
         return None
     fields = read_mapping(node, described.UNCERTAINTY, collector, node.place)
@@ -62,7 +63,22 @@ def read_uncertainty(
         int(fields.text("digits", str(USUAL_DIGITS))),
         _correlations(fields.node("correlation"), symbols, collector),
         node.place,
+        _case(fields.scalar("case"), cases, collector),
     )
+
+
+def _case(node: Scalar | None, cases: Collection[str], collector: Collector) -> str:
+    if node is None or node.text in cases:
+        return node.text if node is not None else ""
+    collector.add(
+        "choice-unknown",
+        node.place,
+        f"there is no case `{shown(node.text)}`",
+        found=shown(node.text),
+        expected=", ".join(cases) or "a case of the file",
+        nearest=nearest_names(node.text, cases),
+    )
+    return ""
 
 
 def _results(node: Node | None, collector: Collector) -> tuple[AskedResult, ...]:

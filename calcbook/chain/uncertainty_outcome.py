@@ -155,8 +155,9 @@ class Sampling:
 
 @dataclass(frozen=True, slots=True)
 class Uncertainty:
-    """The uncertainty of a calculation's results at the base case."""
+    """The uncertainty of a calculation's results in one case; the empty name is the base case."""
 
+    case: str
     coverage: float
     budgets: tuple[Budget, ...]
     left_out: tuple[LeftOut, ...]

@@ -11,6 +11,7 @@ from calcbook.record.data import Data, rounded
 def uncertainty_data(found: Uncertainty) -> Data:
     """Budgets, what is missing in them, and samples; SI values, units beside."""
     return {
+        "case": found.case,
         "coverage": rounded(found.coverage),
         "budgets": {budget.result: _budget(budget) for budget in found.budgets},
         "methods_left_out": [

@@ -11,7 +11,7 @@ import numpy as np
 from calcbook.calcfile.uncertainty import USUAL_COVERAGE, UncertaintyText
 from calcbook.chain.checks import evaluate_check
 from calcbook.chain.factors import with_factors
-from calcbook.chain.outcome import Result, Solved
+from calcbook.chain.outcome import CaseOutcome, Result, Solved
 from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.types import Chain, Layer
 from calcbook.chain.uncertainty_outcome import (
@@ -47,35 +47,37 @@ POSITIVE_MARGIN = "area_margin > 0"
 
 
 def with_uncertainty(solved: Solved, collector: Collector) -> Solved:
-    """The solved calculation with the uncertainty of its results at the base case.
+    """The solved calculation with the uncertainty of its results, in the base case or the one that is asked for.
 
     A budget needs a tolerance, or `uncertainty:` in the file; samples are drawn where the file has that.
     Codes: tolerance-beyond-value, result-unknown, result-not-propagated, correlation-without-tolerance,
     correlation-impossible.
     """
     asked = solved.chain.calculation.uncertainty
-    figures = stated_figures(solved.chain, collector)
+    name = asked.case if asked is not None else ""
+    case = next(one for one in solved.cases if one.name == name)
+    figures = stated_figures(solved.chain, name, collector)
     if not figures and asked is None:
         return solved
     chain = with_factors(solved.chain)
-    factors, left_out = method_figures(chain, solved.base.solutions)
-    results = _results(solved, chain, asked, collector)
+    factors, left_out = method_figures(chain, case.solutions)
+    results = _results(case, chain, asked, collector)
     correlations = _correlations(asked, figures, collector)
     if collector or not results:
         return solved
     return replace(
         solved,
         uncertainty=_Assessment(
-            solved, chain, (*figures, *factors), left_out, results, correlations, asked
+            case, chain, (*figures, *factors), left_out, results, correlations, asked
         ).uncertainty(),
     )
 
 
 def _results(
-    solved: Solved, chain: Chain, asked: UncertaintyText | None, collector: Collector
+    case: CaseOutcome, chain: Chain, asked: UncertaintyText | None, collector: Collector
 ) -> tuple[Measured, ...]:
     """The results to be assessed, by the steps that give them."""
-    known = solved.base.results
+    known = case.results
     found: dict[str, Measured] = {}
     for item in asked.results if asked is not None else ():
         one = measured(chain, item.name)
@@ -146,7 +148,7 @@ def _correlations(
 class _Assessment:
     def __init__(
         self,
-        solved: Solved,
+        case: CaseOutcome,
         chain: Chain,
         figures: tuple[Uncertain, ...],
         left_out: tuple[LeftOut, ...],
@@ -154,15 +156,16 @@ class _Assessment:
         correlations: Correlations,
         asked: UncertaintyText | None,
     ):
-        self.solved, self.chain, self.figures, self.left_out = solved, chain, figures, left_out
+        self.case, self.chain, self.figures, self.left_out = case, chain, figures, left_out
         self.results, self.correlations, self.asked = results, correlations, asked
-        self.inputs = chain.case_inputs("")
+        self.inputs = chain.case_inputs(case.name)
         self.coverage = asked.coverage if asked is not None else USUAL_COVERAGE
 
     def uncertainty(self) -> Uncertainty:
         budgets = self._budgets()
         stated = self.asked.correlations if self.asked is not None else ()
         return Uncertainty(
+            self.case.name,
             self.coverage,
             budgets,
             self.left_out,
@@ -172,7 +175,7 @@ class _Assessment:
         )
 
     def _named(self, name: str) -> Result:
-        return self.solved.base.results[name]
+        return self.case.results[name]
 
     def _exact_allowances(self) -> tuple[str, ...]:
         """Fouling terms that rest on no figure with a tolerance: an allowance gets none by itself."""
@@ -194,7 +197,7 @@ class _Assessment:
     # -- first order --------------------------------------------------------------------------------
 
     def _budgets(self) -> tuple[Budget, ...]:
-        model = ChainModel(self.chain, self.solved.base.solutions, self.results)
+        model = ChainModel(self.chain, self.inputs, self.case.solutions, self.results)
         steps = {
             condition: tuple(
                 dict.fromkeys(
@@ -203,7 +206,7 @@ class _Assessment:
             )
             for condition in model.conditions
         }
-        solutions = self.solved.base.solutions
+        solutions = self.case.solutions
         slopes = {
             condition: derivatives(self.chain, self.inputs, condition, wanted, solutions[condition])
             for condition, wanted in steps.items()
@@ -241,7 +244,9 @@ class _Assessment:
     def _sampling(self, budgets: tuple[Budget, ...]) -> Sampling | None:
         assert self.asked is not None
         statements, texts, not_sampled = self._statements()
-        model = ChainModel(self.chain, self.solved.base.solutions, self.results, statements, limits=True)
+        model = ChainModel(
+            self.chain, self.inputs, self.case.solutions, self.results, statements, limits=True
+        )
         drawn = [Drawn(figure.id, figure.distribution) for figure in self.figures]
         if not drawn:
             return None
@@ -273,7 +278,7 @@ class _Assessment:
         stated = {
             f"criterion {place}": item for place, item in enumerate(self.chain.calculation.acceptance, 1)
         }
-        for row in self.solved.base.criteria:
+        for row in self.case.criteria:
             item = stated[row.id]
             result = measured(self.chain, item.result)
             if result is None:
@@ -283,7 +288,7 @@ class _Assessment:
                 Statement(row.id, result, item.operator, row.limit, self._limit_step(item.limit.symbol))
             )
             texts[row.id] = (row.that, row.met)
-        margin = measured(self.chain, MARGIN) if MARGIN in self.solved.base.results else None
+        margin = measured(self.chain, MARGIN) if MARGIN in self.case.results else None
         said = any(one.result.name == MARGIN and one.limit == 0.0 for one in statements)
         if margin is not None and not said:
             statements.append(Statement(POSITIVE_MARGIN, margin, ">", 0.0))
@@ -303,7 +308,7 @@ class _Assessment:
             if not count:
                 continue
             nominal = evaluate_check(
-                one.check, self.solved.base.solutions[one.condition], "", self.chain.dimensions
+                one.check, self.case.solutions[one.condition], self.case.name, self.chain.dimensions
             )
             key = (one.check.id, count, nominal.state)
             # What has nothing to do with deposits is left by the same samples in both conditions: one row.

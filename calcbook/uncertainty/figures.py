@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from calcbook.calcfile.calculation import Given, Tolerance
 from calcbook.chain.factors import factor_of, films_of
@@ -49,14 +49,18 @@ class Uncertain:
         return self.line.degrees
 
 
-def stated_figures(chain: Chain, collector: Collector) -> tuple[Uncertain, ...]:
-    """Every given with a tolerance, in the order of the file.
+def stated_figures(chain: Chain, case: str, collector: Collector) -> tuple[Uncertain, ...]:
+    """Every given with a tolerance in a case, in the order of the file.
 
     Codes: tolerance-beyond-value, and those of ``read_tolerance`` once the kind of the given is known.
     """
     found = []
-    for symbol, given in chain.calculation.givens.items():
+    restated = chain.calculation.cases.get(case, {})
+    figures = chain.case_inputs(case)
+    for symbol, base in chain.calculation.givens.items():
+        given = restated.get(symbol, base)
         item = chain.inputs[f"given/{symbol}"]
+        item = replace(item, value=float(figures[item.id]))
         if given.tolerance is None:
             continue
         one = _stated(given, given.tolerance, item, _floor_of(chain, item), collector)

@@ -141,16 +141,17 @@ class ChainModel:
     def __init__(
         self,
         chain: Chain,
+        inputs: Mapping[str, Array],
         base: Mapping[str, Solution],
         results: Sequence[Measured],
         statements: Sequence[Statement] = (),
         limits: bool = False,
     ):
-        """``base`` are the solutions of the stated figures by condition."""
+        """``inputs`` are the stated figures, ``base`` their solutions by condition."""
         first = next(iter(base.values()))
         self.chain = about_state(chain, first.values)
         self.phases = phases(chain, first)
-        self.inputs = chain.case_inputs("")
+        self.inputs = inputs
         self.results = tuple(results)
         self.statements = tuple(statements)
         wanted = (*results, *(statement.result for statement in statements))
@@ -183,7 +184,7 @@ class ChainModel:
         if not possible.all():
             # What cannot be is not solved: the stated figures stand in its place, and it gets no answer.
             inputs = {
-                name: np.where(possible, value, self.chain.inputs[name].value) if name in drawn else value
+                name: np.where(possible, value, self.inputs[name]) if name in drawn else value
                 for name, value in inputs.items()
             }
         whole = completed(self.chain, inputs)

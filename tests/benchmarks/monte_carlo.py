@@ -51,7 +51,7 @@ def cooler() -> tuple[Chain, dict[str, Solution], list[Drawn], Measured]:
         chain = with_factors(chain_of(Path(folder), body()))
     solutions = {"service": solve(chain, chain.case_inputs(""), "service")}
     factors = [one for one in method_figures(chain, solutions)[0] if one.id == FACTOR]
-    drawn = [Drawn(one.id, one.distribution) for one in (*stated_figures(chain, Collector()), *factors)]
+    drawn = [Drawn(one.id, one.distribution) for one in (*stated_figures(chain, "", Collector()), *factors)]
     overall = measured(chain, "U_service")
     assert overall is not None
     return chain, solutions, drawn, overall
@@ -75,7 +75,7 @@ def main() -> None:
     chain, solutions, drawn, overall = cooler()
     base = chain.case_inputs("")
     for title, limits in (("", False), (", limits watched", True)):
-        model = ChainModel(chain, solutions, [overall], limits=limits)
+        model = ChainModel(chain, base, solutions, [overall], limits=limits)
         # Two digits are more than a million samples give: the sampling goes on to the most trials.
         engine_times, hand_times = [], []
         for _ in range(REPEATS):

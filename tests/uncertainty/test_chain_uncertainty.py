@@ -281,9 +281,11 @@ def test_the_record_is_the_same_each_time_and_however_blocks_are_joined(tmp_path
     from calcbook.uncertainty.sampling import Drawn
 
     factors, _ = method_figures(chain, found.base.solutions)
-    drawn = [Drawn(one.id, one.distribution) for one in (*stated_figures(chain, Collector()), *factors)]
+    drawn = [Drawn(one.id, one.distribution) for one in (*stated_figures(chain, "", Collector()), *factors)]
     results = [measured(chain, name) for name in ("U_service", "U_clean")]
-    model = ChainModel(chain, found.base.solutions, [one for one in results if one is not None])
+    model = ChainModel(
+        chain, chain.case_inputs(""), found.base.solutions, [one for one in results if one is not None]
+    )
     several = [propagate(model, drawn, 0.95, 1, together=count) for count in (1, 8)]
     assert several[0] == several[1]
     assert several[0] is not None
@@ -383,7 +385,7 @@ def test_a_drawn_pressure_is_what_that_pressure_gives(tmp_path) -> None:
     chain = with_factors(found.chain)
     one = measured(chain, "U_service")
     assert one is not None
-    model = ChainModel(chain, found.base.solutions, [one])
+    model = ChainModel(chain, chain.case_inputs(""), found.base.solutions, [one])
     at = np.array([2.85e5, 2.95e5, 3.0e5, 3.15e5])
     values = model.outputs({"given/p_air": at})["U_service"]
     for pressure, value in zip(at, values, strict=True):
@@ -413,7 +415,9 @@ def test_slopes_of_every_example_against_differences(path: Path) -> None:
         return
     chain = with_factors(found.chain)
     results = [measured(chain, budget.result) for budget in found.uncertainty.budgets]
-    model = ChainModel(chain, found.base.solutions, [one for one in results if one is not None])
+    model = ChainModel(
+        chain, chain.case_inputs(""), found.base.solutions, [one for one in results if one is not None]
+    )
     lines = {row.input.id: row.input for budget in found.uncertainty.budgets for row in budget.rows}
     small = [Plain(name, item.value, 1e-3 * item.standard) for name, item in lines.items()]
     differences = wide_slopes(model.outputs, small)
@@ -450,7 +454,7 @@ def test_the_cooler_against_the_same_sampling_by_hand() -> None:
     count = 200_000
     chain, solutions, drawn, result = monte_carlo.cooler()
     hand = monte_carlo.by_hand(chain.case_inputs(""), count)
-    model = ChainModel(chain, solutions, [result])
+    model = ChainModel(chain, chain.case_inputs(""), solutions, [result])
     found = propagate(model, drawn, 0.95, 2, most_trials=count)
     assert found is not None and found.answered == count
     y = found.intervals["U_service"]
@@ -458,3 +462,25 @@ def test_the_cooler_against_the_same_sampling_by_hand() -> None:
     assert y.mean == pytest.approx(hand[0], abs=allowed)
     assert y.standard == pytest.approx(hand[1], abs=allowed)
     assert (y.low, y.high) == pytest.approx(hand[2:], abs=2.67 * allowed)
+
+
+def test_a_case_has_its_own_figures_and_tolerances(tmp_path) -> None:
+    """Heat flow is linear in T_i: its uncertainty is UA times that of the case's own tolerance."""
+    body = with_tolerance(HEATED, T_i="{standard: 0.8 K}", T_o="{standard: 0.1 K}")
+    cases = (
+        "cases:\n"
+        "  winter:\n"
+        "    T_i: {value: 70 degC, source: test, tolerance: {standard: 0.4 K}}\n"
+        "    T_o: {value: 10 degC, source: test}\n"
+        "acceptance:\n  - {that: heat_flow_service >= 1 W, source: test}\n"
+    )
+    found = solved(tmp_path, body, SAMPLED.format("heat_flow_service") + "  case: winter\n" + cases)
+    winter = next(case for case in found.cases if case.name == "winter").results
+    budget = budget_of(found, "heat_flow_service")
+    assert budget.value == winter["heat_flow_service"].value != found.base.results["heat_flow_service"].value
+    assert budget.standard == pytest.approx(winter["UA_service"].value * math.hypot(0.4, 0.1), rel=1e-9)
+    assert sampled_of(found, "heat_flow_service").is_validated
+    assert {row.input.id: row.input.value for row in budget.rows}["given/T_i"] == pytest.approx(343.15)
+    text = record_text(found)
+    assert "(JCGM 100:2008, 5.1.2) in case winter, from the tolerances" in text
+    assert "Probability that it holds in case winter" in text

@@ -38,11 +38,15 @@ def how_sure(page: Page) -> list[Block]:
     """For the brief: how often each criterion holds over the samples, where the file asks for them."""
     found = page.solved.uncertainty
     samples = found.sampling if found is not None else None
-    if samples is None or not samples.chances:
+    if found is None or samples is None or not samples.chances:
         return []
     answered = samples.trials - samples.unanswered
     words = "; ".join(f"{one.text}: {_chance(one.probability, answered)}" for one in samples.chances)
-    return [Paragraph(f"Probability that it holds, from the uncertainties of section 11: {words}.")]
+    return [
+        Paragraph(
+            f"Probability that it holds in {_case(found)}, from the uncertainties of section 11: {words}."
+        )
+    ]
 
 
 # --- what it is made of -----------------------------------------------------------------------------
@@ -50,7 +54,7 @@ def how_sure(page: Page) -> list[Block]:
 
 def _what_is_in_it(found: Uncertainty) -> list[Block]:
     words = (
-        "First-order propagation (JCGM 100:2008, 5.1.2) at the base case, from the tolerances of the givens and"
+        f"First-order propagation (JCGM 100:2008, 5.1.2) in {_case(found)}, from the tolerances of the givens and"
         " the accuracy of the methods; slopes are those of the relations. The accuracy of a method is a factor B"
         " around 1 on the film coefficient that its card gives, one for all terms of that card."
     )
@@ -69,6 +73,10 @@ def _what_is_in_it(found: Uncertainty) -> list[Block]:
         ),
     ]
     return [Paragraph(words), Bullets(tuple(facts))]
+
+
+def _case(found: Uncertainty) -> str:
+    return f"case {found.case}" if found.case else "the base case"
 
 
 def _allowances(found: Uncertainty) -> list[str]:
