@@ -13,7 +13,7 @@ import numpy as np
 from calcbook.chain.circuit import branch_coefficient
 from calcbook.chain.completing import completed
 from calcbook.chain.solve import Solution, closed, outward
-from calcbook.chain.types import CLEAN, Branch, Chain, Group, Layer
+from calcbook.chain.types import CLEAN, SERVICE_FLAG, Branch, Chain, Group, Layer
 from calcbook.library.operations import Slopes, run
 
 Array = np.ndarray
@@ -124,6 +124,7 @@ class _Trace:
         self.condition = condition
         self.shape = solution.converged.shape
         self.values: dict[str, Array] = dict(chain.constants)  # type: ignore[arg-type]
+        self.values[SERVICE_FLAG] = np.asarray(float(condition != CLEAN))
         self.slopes: Slopes = {}
         self.names = tuple(inputs)
         for name, value in inputs.items():

@@ -615,6 +615,10 @@ class _Printing:
             outside = Decimal(int(self.outside))
             return outside, outside - direction
         exact = self._in_unit(self.outside)
+        # 348.15 K is 75 °C, not the 74.99999999999997 °C of the subtraction, where both are one figure in SI.
+        short = Context(prec=TYPED_DIGITS).create_decimal(exact)
+        if read_any(f"{short} {self.unit}".strip()).value == self.outside:
+            exact = short
         change = abs(exact - self.now)
         last = min(exact.adjusted() - PRINTED_DIGITS, change.adjusted() - CHANGE_DIGITS) + 1
         last = max(last, exact.adjusted() - MOST_DIGITS + 1)

@@ -9,8 +9,17 @@ from small_calculations import COOLER, OIL, SPHERE, STATED, bare_surface, chain_
 from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.solve import solve
 
+# A deposit that narrows the bore in service and not clean.
+NARROWED = COOLER.replace(
+    "kind: fouling, resistance: R_fi, on: inside",
+    "kind: fouling, on: inside, deposit: {thickness: t_d, conductivity: k_d, narrows: yes}",
+).replace(
+    "  R_fi: {value: 0.00009 m^2 K/W",
+    "  k_d: {value: 1.2 W/(m K), is: of the deposit, source: test}\n  t_d: {value: 0.2 mm",
+)
 BODIES = {
     "cooler": COOLER,
+    "narrowed bore": NARROWED,
     "oil": OIL,
     "insulated pipe": insulated_pipe(),
     "insulated pipe, cold sky": insulated_pipe("-20 degC"),

@@ -331,7 +331,7 @@ DUTY = (
         "  T_1: {value: 85 degC, is: warm inlet, source: test}\n"
         "  T_2: {value: 75 degC, is: warm outlet, source: test}\n"
         "  T_3: {value: 25 degC, is: cool inlet, source: test}\n"
-        "  T_4: {value: 35 degC, is: cool outlet, source: test}\n",
+        "  T_4: {value: 36 degC, is: cool outlet, source: test}\n",
     )
     .replace("  T_i: {value: 80 degC, is: inside temperature, source: test}\n", "")
     .replace("  T_o: {value: 30 degC, is: outside temperature, source: test}\n", "")
@@ -343,14 +343,14 @@ DUTY = (
 
 
 def test_the_margin_of_a_duty_in_closed_form(tmp_path) -> None:
-    """Equal capacity flows, ends 50 K apart: M + 1 = U·A·ΔT_lm/(m·cp·(T_1 - T_2)), U free of temperatures."""
+    """Ends 49 and 50 K apart: M + 1 = U·A·ΔT_lm/(m·cp·(T_1 - T_2)), U free of temperatures."""
     body = with_tolerance(DUTY, m="2 %", T_2="{standard: 0.5 K}", h_o="10 %")
     found = solved(tmp_path, body, SAMPLED.format("area_margin"))
     ratio = 1.0 + found.base.results["area_margin"].value
     u = found.base.results["U_service"].value
 
     def mean(warm_out: float) -> float:
-        first, second = 85.0 - 35.0, warm_out - 25.0
+        first, second = 85.0 - 36.0, warm_out - 25.0
         return first if first == second else (first - second) / math.log(first / second)
 
     def ratio_at(warm_out: float) -> float:
@@ -484,3 +484,11 @@ def test_a_case_has_its_own_figures_and_tolerances(tmp_path) -> None:
     text = record_text(found)
     assert "(JCGM 100:2008, 5.1.2) in case winter, from the tolerances" in text
     assert "Probability that it holds in case winter" in text
+
+
+def test_a_flip_at_the_other_end_of_a_stream_is_printed_as_it_would_be_typed(tmp_path) -> None:
+    """The warm inlet flips the duty at its outlet, 75 °C: 348.15 K less 273.15 K is not 75 in floats."""
+    found = solved(tmp_path, DUTY)
+    assert found.flips is not None
+    ends = [one for one in found.flips.of_kind("limit") if one.input.symbol == "T_1" and one.at == 348.15]
+    assert [one.printed for one in ends] == [75.0] * len(ends) and ends
