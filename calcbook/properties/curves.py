@@ -66,6 +66,13 @@ class Curve:
     def _walk(self, name: str, temperatures: Array, sloped: bool) -> Array:
         if temperatures.size == 1:
             return self._walk_one(name, temperatures, sloped)
+        if not temperatures.size:
+            return np.empty_like(temperatures)
+        whole = self._panel(name, "", self.low, self.high)
+        if whole is not None:
+            result = self._from_series(name, _Panel("", self.low, self.high, whole), temperatures, sloped)
+            self.store.save()
+            return result
         result = np.empty_like(temperatures)
         waiting = [("", self.low, self.high, np.arange(temperatures.size))]
         while waiting:

@@ -49,10 +49,13 @@ def evaluate(coefficients: Sequence[float], low: float, high: float, at: Array) 
         return np.full(at.shape, _evaluate_one(coefficients, low, high, at.item()))
     x = (at - 0.5 * (low + high)) / (0.5 * (high - low))
     double = x + x
-    later = np.zeros_like(x)
-    last = np.zeros_like(x)
+    later, last, free = np.zeros_like(x), np.zeros_like(x), np.empty_like(x)
     for coefficient in reversed(coefficients[1:]):
-        later, last = double * later - last + coefficient, later
+        # double*later - last + coefficient, in memory that is there already
+        np.multiply(double, later, out=free)
+        np.subtract(free, last, out=free)
+        np.add(free, coefficient, out=free)
+        later, last, free = free, later, last
     return x * later - last + coefficients[0]
 
 
