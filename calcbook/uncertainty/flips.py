@@ -145,19 +145,19 @@ class _Table:
     def takes(self, samples: Samples) -> int:
         """Add a batch; the place of its first sample."""
         start, size = len(self.missing), len(samples.missing)
-        for key in samples.verdicts:
-            if key not in self.keys:
-                self.keys.append(key)
+        fresh = [key for key in samples.verdicts if key not in self.keys]
+        if fresh:
+            self.keys += fresh
+            self.limit_rows = np.array([key[0] == LIMIT for key in self.keys])
+            self.stop_rows = np.array(
+                [self.verdict(row, samples).level == "stop" for row in range(len(self.keys))]
+            )
         codes = np.full((len(self.keys), start + size), NO_VERDICT)
         codes[: len(self.codes), :start] = self.codes
         for row, key in enumerate(self.keys):
             if key in samples.verdicts:
                 codes[row, start:] = samples.codes(key)
         self.codes = codes
-        self.limit_rows = np.array([key[0] == LIMIT for key in self.keys])
-        self.stop_rows = np.array(
-            [self.verdict(row, samples).level == "stop" for row in range(len(self.keys))]
-        )
         names = {reason: self._reason(reason) for reason in samples.reasons}
         renamed = np.array([names[reason] for reason in samples.reasons])
         self.missing = np.concatenate([self.missing, renamed[samples.missing]])
@@ -381,9 +381,8 @@ class _Search:
             ]
             if number:
                 close = CLOSE * _resolution(place, line.now)
-                for enclosing in (place - close, place + close):
-                    figures.append(enclosing)
-                    printed += _Printing(line, enclosing, self._given(line)).figures()
+                figures += [place - close, place + close]
+                printed += _Printing(line, place + line.direction * close, self._given(line)).figures()
         return [figure for figure in figures if min(low, high) < figure < max(low, high)] + printed
 
     def _crossings(self, bracket: _Bracket, alike: float) -> list[float]:
