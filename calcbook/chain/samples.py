@@ -397,10 +397,7 @@ def _mark_states(
     phases: Mapping[str, Sequence[str]],
 ) -> None:
     """Samples whose record would have a fault of state, and those in which a stream has another phase."""
-    for before, after in zip(chain.surfaces, chain.surfaces[1:], strict=False):
-        if after.diameter:
-            inner, outer = np.asarray(values[before.diameter]), np.asarray(values[after.diameter])
-            samples.mark(~((outer > inner) & (inner > 0.0)), "the wall is turned inside out")
+    mark_walls(chain, values, samples)
     for state in chain.streams.values():
         if state.temperature not in values:
             continue
@@ -413,10 +410,18 @@ def _mark_states(
             other = np.array([phase for phase, *_ in known])[which] != np.array(phases[state.name])[case_of]
             samples.mark(other, f"{state.name} has another phase")
     for here, opposite in ((chain.inner, chain.outer), (chain.outer, chain.inner)):
-        _mark_directions(here, opposite, values, samples)
+        mark_directions(here, opposite, values, samples)
 
 
-def _mark_directions(here: Group, opposite: Group, values: Mapping[str, Array], samples: Samples) -> None:
+def mark_walls(chain: Chain, values: Mapping[str, Array], samples: Samples) -> None:
+    """Samples in which a surface does not lie outside the one before it."""
+    for before, after in zip(chain.surfaces, chain.surfaces[1:], strict=False):
+        if after.diameter:
+            inner, outer = np.asarray(values[before.diameter]), np.asarray(values[after.diameter])
+            samples.mark(~((outer > inner) & (inner > 0.0)), "the wall is turned inside out")
+
+
+def mark_directions(here: Group, opposite: Group, values: Mapping[str, Array], samples: Samples) -> None:
     """A film that condenses has the colder side opposite, a film that boils the hotter one."""
     for branch in here.branches:
         change = branch.situation.changes_phase if branch.situation is not None else ""

@@ -9,7 +9,6 @@ from dataclasses import replace
 import numpy as np
 
 from calcbook.calcfile.uncertainty import USUAL_COVERAGE, UncertaintyText
-from calcbook.chain.checks import evaluate_check
 from calcbook.chain.factors import with_factors
 from calcbook.chain.outcome import CaseOutcome, Result, Solved
 from calcbook.chain.sensitivity import derivatives
@@ -36,7 +35,7 @@ from calcbook.uncertainty.budget import (
 )
 from calcbook.uncertainty.figures import Uncertain, method_figures, stated_figures
 from calcbook.uncertainty.measured import Measured, measured
-from calcbook.uncertainty.samples import OUTSIDE_ANY, ChainModel, Statement
+from calcbook.uncertainty.samples import OUTSIDE_ANY, ChainModel, Statement, mark_of
 from calcbook.uncertainty.sampling import GENERATOR, Drawn, Interval, Propagated, is_possible, propagate
 
 Array = np.ndarray
@@ -56,7 +55,7 @@ def with_uncertainty(solved: Solved, collector: Collector) -> Solved:
     asked = solved.chain.calculation.uncertainty
     name = asked.case if asked is not None else ""
     case = next(one for one in solved.cases if one.name == name)
-    figures = stated_figures(solved.chain, name, collector)
+    figures = stated_figures(solved.chain, collector, name)
     if not figures and asked is None:
         return solved
     chain = with_factors(solved.chain)
@@ -302,18 +301,17 @@ class _Assessment:
 
     def _outside(self, model: ChainModel, found: Propagated) -> tuple[OutsideRow, ...]:
         """The limits that samples leave, each with its state at the stated values."""
+        states = {(check.id, check.condition): check.state for check in self.case.checks}
         rows: dict[tuple[str, int, str], OutsideRow] = {}
-        for one in {one.id: one for one in model.limits}.values():
-            count = found.marks.get(one.id, 0)
+        for name, one in {mark_of(one): one for one in model.limits}.items():
+            count = found.marks.get(name, 0)
             if not count:
                 continue
-            nominal = evaluate_check(
-                one.check, self.case.solutions[one.condition], self.case.name, self.chain.dimensions
-            )
-            key = (one.check.id, count, nominal.state)
+            nominal = states.get((one.id, one.condition), "its method is not used")
+            key = (one.id, count, nominal)
             # What has nothing to do with deposits is left by the same samples in both conditions: one row.
             where = f"{rows[key].condition} and {one.condition}" if key in rows else one.condition
-            rows[key] = OutsideRow(one.check.id, where, one.check.limit.level, count, nominal.state)
+            rows[key] = OutsideRow(one.id, where, one.level, count, nominal)
         return tuple(rows.values())
 
 

@@ -49,7 +49,7 @@ class Uncertain:
         return self.line.degrees
 
 
-def stated_figures(chain: Chain, case: str, collector: Collector) -> tuple[Uncertain, ...]:
+def stated_figures(chain: Chain, collector: Collector, case: str = "") -> tuple[Uncertain, ...]:
     """Every given with a tolerance in a case, in the order of the file.
 
     Codes: tolerance-beyond-value, and those of ``read_tolerance`` once the kind of the given is known.

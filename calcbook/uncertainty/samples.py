@@ -8,10 +8,11 @@ from dataclasses import dataclass
 import numpy as np
 
 from calcbook.chain.about_state import about_state
+from calcbook.chain.checks import NOT_EVALUABLE, OUTSIDE, check_states
 from calcbook.chain.completing import completed
+from calcbook.chain.samples import Samples, mark_directions, mark_walls
 from calcbook.chain.solve import Solution, closed
-from calcbook.chain.types import Branch, Chain, ChainCheck, Layer
-from calcbook.formulas import evaluate
+from calcbook.chain.types import Branch, Chain, ChainCheck, Group, Layer, StreamState
 from calcbook.properties import FluidAtPressure
 from calcbook.uncertainty.figures import has_floor
 from calcbook.uncertainty.measured import Measured
@@ -50,7 +51,11 @@ class Watched:
 
     @property
     def id(self) -> str:
-        return f"{self.condition}: {self.check.id}"
+        return self.check.id
+
+    @property
+    def level(self) -> str:
+        return self.check.limit.level
 
     @property
     def needs(self) -> set[str]:
@@ -58,20 +63,94 @@ class Watched:
         bound = set(self.check.inputs.values())
         return bound.union(*(one.inputs.values() for one in self.check.counts_when))
 
-    def outside(self, solution: Solution, size: int) -> Array:
+    def outside(self, solution: Solution) -> Array:
         """The samples that leave the limit; a figure without a value leaves it."""
-        values = solution.values
-        mask = np.ones(size, dtype=bool)
+        acts: Array = np.asarray(True)
         if self.branch and self.branch in solution.chosen:
-            mask = np.broadcast_to(solution.chosen[self.branch] == self.candidate, (size,)).copy()
-        if not mask.any() or not self.needs <= values.keys():
-            return np.zeros(size, dtype=bool)
-        for one in self.check.counts_when:
-            mask &= evaluate(one.relation, {symbol: values[bound] for symbol, bound in one.inputs.items()})
-        held = evaluate(
-            self.check.limit.that, {symbol: values[bound] for symbol, bound in self.check.inputs.items()}
+            acts = solution.chosen[self.branch] == self.candidate
+        if not acts.any() or not self.needs <= solution.values.keys():
+            return np.asarray(False)
+        return acts & np.isin(check_states(self.check, solution.values), (OUTSIDE, NOT_EVALUABLE))
+
+
+@dataclass(frozen=True, slots=True)
+class WallPhase:
+    """A fluid that must not boil, condense or freeze at the surfaces it touches, in one condition.
+
+    It does so at ``end``, or at the boiling temperature on ``line`` where the samples have their own pressure.
+    """
+
+    owner: str
+    name: str
+    condition: str
+    surfaces: tuple[str, ...]
+    end: float
+    line: FluidAtPressure | None = None
+    pressure: str = ""
+    level: str = "range"
+
+    @property
+    def id(self) -> str:
+        return f"{self.owner} / wall phase / {self.name}"
+
+    @property
+    def needs(self) -> set[str]:
+        """The ids of the figures that it is evaluated from."""
+        return {*self.surfaces, self.pressure} - {""}
+
+    def outside(self, solution: Solution) -> Array:
+        """The samples in which the fluid changes its phase at the wall."""
+        sides = [np.asarray(solution.values[name]) for name in self.surfaces]
+        end: Array = np.asarray(self.end)
+        if self.line is not None:
+            end = self.line.boiling_temperature(solution.values[self.pressure], outside="nan")
+        if self.name == "boils":
+            return np.asarray(np.maximum.reduce(sides) >= end)
+        return np.asarray(np.minimum.reduce(sides) <= end)
+
+
+Limited = Watched | WallPhase
+
+
+def wall_phases(chain: Chain, solution: Solution, condition: str) -> list[WallPhase]:
+    """The phases at the walls of films and gaps whose fluid keeps its phase, as they stand at the stated figures."""
+    if not chain.has_temperatures:
+        return []
+    found = []
+    for element in chain.elements:
+        if isinstance(element, Layer):
+            if element.gap is not None:
+                sides = (element.first_temperature, element.second_temperature)
+                found += _phases_at(element.name, element.gap.fluid, sides, solution, condition)
+            continue
+        surface = chain.results.get(f"T root {element.name}", element.surface_temperature)
+        for branch in element.branches:
+            changes = branch.situation is not None and branch.situation.changes_phase
+            if branch.kind == "film" and branch.stream and not changes:
+                state = chain.streams[branch.stream]
+                found += _phases_at(branch.name, state, (surface,), solution, condition)
+    return found
+
+
+def _phases_at(
+    owner: str, state: StreamState, surfaces: tuple[str, ...], solution: Solution, condition: str
+) -> list[WallPhase]:
+    pressure = solution.number(state.pressure) if state.pressure else None
+    fraction = solution.number(state.fraction) if state.fraction else None
+    fluid = state.fluid.state(pressure, fraction, state.phase)
+    phase = state.phase or fluid.phase_at(solution.number(state.temperature))
+    boiling, freezing = fluid.saturation_temperature(), fluid.freezing_temperature()
+    found = []
+    if fluid.has_vapour_pressure and boiling is not None and phase in ("liquid", "gas"):
+        name = "boils" if phase == "liquid" else "condenses"
+        pure = state.fluid.text.kind == "name"
+        line = state.fluid.state(None, None, phase) if pure else None
+        found.append(
+            WallPhase(owner, name, condition, surfaces, boiling, line, state.pressure if pure else "")
         )
-        return mask & ~np.broadcast_to(held, (size,))
+    if phase == "liquid" and freezing is not None:
+        found.append(WallPhase(owner, "freezes", condition, surfaces, freezing))
+    return found
 
 
 def watched(chain: Chain, condition: str) -> list[Watched]:
@@ -85,7 +164,7 @@ def watched(chain: Chain, condition: str) -> list[Watched]:
             continue
         for branch in element.branches:
             found += _of_branch(branch, condition)
-    return [one for one in found if one.check.limit.level in ("range", "stop") and _is_known(chain, one)]
+    return [one for one in found if one.level in ("range", "stop") and _is_known(chain, one)]
 
 
 def _of_branch(branch: Branch, condition: str) -> list[Watched]:
@@ -135,6 +214,15 @@ def phases(chain: Chain, solution: Solution) -> tuple[Phase, ...]:
     return tuple(found)
 
 
+def mark_of(one: Limited) -> str:
+    """The name under which the samples that leave a limit are counted."""
+    return f"{one.condition}: {one.id}"
+
+
+def _bulks(group: Group) -> set[str]:
+    return {group.bulk, *(branch.reference for branch in group.branches)}
+
+
 class ChainModel:
     """One chain as a model: solves the conditions that its results need, a batch at a time."""
 
@@ -158,14 +246,17 @@ class ChainModel:
         self.conditions = tuple(
             dict.fromkeys(condition for one in wanted for condition, _ in one.parts.values())
         )
-        self.limits = tuple(
-            one for condition in self.conditions for one in (watched(chain, condition) if limits else ())
-        )
+        self.limits: tuple[Limited, ...] = ()
+        for condition in self.conditions if limits else ():
+            walls = wall_phases(chain, base[condition], condition)
+            self.limits = (*self.limits, *watched(chain, condition), *walls)
         self.keep = {
             *(step for one in wanted for _, step in one.parts.values()),
             *(statement.limit_step for statement in statements if statement.limit_step),
             *(name for one in self.limits for name in one.needs),
             *(name for one in self.phases for name in (one.temperature, one.pressure)),
+            *(surface.diameter for surface in chain.surfaces),
+            *(name for group in (chain.inner, chain.outer) for name in _bulks(group)),
         }
 
     def outputs(self, drawn: Mapping[str, Array]) -> dict[str, Array]:
@@ -195,18 +286,25 @@ class ChainModel:
             possible &= solution.converged
             for phase in self.phases:
                 possible &= phase.holds(solution.values)
+        states = Samples(np.zeros(size, dtype=int))
+        first = next(iter(solutions.values())).values
+        mark_walls(self.chain, first, states)
+        for here, opposite in ((self.chain.inner, self.chain.outer), (self.chain.outer, self.chain.inner)):
+            mark_directions(here, opposite, first, states)
+        possible &= states.missing == 0
         return self._sampled(solutions, possible, size)
 
     def _sampled(self, solutions: Mapping[str, Solution], possible: Array, size: int) -> Sampled:
         marks: dict[str, Array] = {}
         any_outside = np.zeros(size, dtype=bool)
         for one in self.limits:
-            outside = one.outside(solutions[one.condition], size)
-            if one.check.limit.level == "stop":
+            outside = np.broadcast_to(one.outside(solutions[one.condition]), (size,))
+            if one.level == "stop":
                 possible = possible & ~outside
             else:
                 any_outside |= outside
-            marks[one.id] = marks[one.id] | outside if one.id in marks else outside
+            name = mark_of(one)
+            marks[name] = marks[name] | outside if name in marks else outside
         values = {condition: solution.values for condition, solution in solutions.items()}
         outputs = {
             one.name: np.where(possible, np.broadcast_to(one.value(values), (size,)), np.nan)

@@ -51,7 +51,7 @@ def cooler() -> tuple[Chain, dict[str, Solution], list[Drawn], Measured]:
         chain = with_factors(chain_of(Path(folder), body()))
     solutions = {"service": solve(chain, chain.case_inputs(""), "service")}
     factors = [one for one in method_figures(chain, solutions)[0] if one.id == FACTOR]
-    drawn = [Drawn(one.id, one.distribution) for one in (*stated_figures(chain, "", Collector()), *factors)]
+    drawn = [Drawn(one.id, one.distribution) for one in (*stated_figures(chain, Collector()), *factors)]
     overall = measured(chain, "U_service")
     assert overall is not None
     return chain, solutions, drawn, overall

@@ -255,7 +255,7 @@ def test_samples_that_leave_the_range_of_a_method_are_counted(tmp_path) -> None:
         expected, abs=3.0 * math.sqrt(expected * (1 - expected) / samples.trials)
     )
     assert row.nominal == "within" and samples.outside_any >= row.samples
-    assert "Caution: Samples outside a range limit of a method or term:" in record_text(found)
+    assert "Caution: Samples outside a range limit of a method or term, or" in record_text(found)
 
 
 def test_samples_above_the_boiling_point_have_no_answer(tmp_path) -> None:
@@ -281,7 +281,7 @@ def test_the_record_is_the_same_each_time_and_however_blocks_are_joined(tmp_path
     from calcbook.uncertainty.sampling import Drawn
 
     factors, _ = method_figures(chain, found.base.solutions)
-    drawn = [Drawn(one.id, one.distribution) for one in (*stated_figures(chain, "", Collector()), *factors)]
+    drawn = [Drawn(one.id, one.distribution) for one in (*stated_figures(chain, Collector()), *factors)]
     results = [measured(chain, name) for name in ("U_service", "U_clean")]
     model = ChainModel(
         chain, chain.case_inputs(""), found.base.solutions, [one for one in results if one is not None]
@@ -492,3 +492,33 @@ def test_a_flip_at_the_other_end_of_a_stream_is_printed_as_it_would_be_typed(tmp
     assert found.flips is not None
     ends = [one for one in found.flips.of_kind("limit") if one.input.symbol == "T_1" and one.at == 348.15]
     assert [one.printed for one in ends] == [75.0] * len(ends) and ends
+
+
+def test_samples_that_boil_at_the_wall_are_counted(tmp_path) -> None:
+    """Dittus and Boelter's equation takes no surface temperature: T_s is linear in that of the other side."""
+    body = FLOW.replace("MASS", "18.2").replace("4 bara", "1.01325 bara")
+    body = body.replace("74 degC", "90 degC").replace("31 degC", "118 degC")
+    found = solved(tmp_path, with_tolerance(body, T_cold="12 K"), SAMPLED.format("U_service"))
+    samples = found.uncertainty.sampling
+    part = (found.base.results["T inside surface service"].value - 363.15) / 28.0
+    # The film's part of the whole difference falls with its factor B; "within 25 %, most data" is 0.25/1.96.
+    shares = [(place + 0.5) / 4000.0 for place in range(4000)]
+    factors = np.array([NormalDist(1.0, 0.25 / K95).inv_cdf(share) for share in shares])
+    parts = part / (part + factors * (1.0 - part))
+    # Water boils at 99.974 °C there (CoolProp, IAPWS-95); T_o is even within 106 to 130 °C.
+    expected = float(np.clip((40.0 - 9.974 / parts) / 24.0, 0.0, 1.0).mean())
+    assert 0.1 < expected < 0.9
+    row = next(row for row in samples.outside if row.check == "tube film / wall phase / boils")
+    assert row.samples / samples.trials == pytest.approx(
+        expected, abs=3.0 * math.sqrt(expected * (1.0 - expected) / samples.trials) + 1e-3
+    )
+
+
+def test_a_wall_turned_inside_out_has_no_answer(tmp_path) -> None:
+    """d_o even within ± 4 mm, d_i 3.3 mm below it: a share (4 - 3.3)/8 of the samples has no wall."""
+    body = with_tolerance(FLOW.replace("MASS", "18.2"), d_o="4 mm")
+    samples = solved(tmp_path, body, SAMPLED.format("U_service")).uncertainty.sampling
+    expected = (4.0 - 3.3) / 8.0
+    assert samples.unanswered / samples.trials == pytest.approx(
+        expected, abs=3.0 * math.sqrt(expected * (1.0 - expected) / samples.trials)
+    )

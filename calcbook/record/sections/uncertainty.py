@@ -327,9 +327,8 @@ def _counts(samples: Sampling) -> list[Block]:
         " the figures above."
     )
     more = (
-        f"{_caution(samples.outside_any, samples)}Samples outside a range limit of a method or term:"
-        f" {_part(samples.outside_any, samples)}. They are counted in. Boiling, condensing and freezing at the wall"
-        " are not looked at in the samples."
+        f"{_caution(samples.outside_any, samples)}Samples outside a range limit of a method or term, or"
+        f" of the phase at a wall: {_part(samples.outside_any, samples)}. They are counted in."
     )
     blocks: list[Block] = [Bullets((words, more))]
     if samples.outside:
