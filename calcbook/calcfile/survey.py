@@ -100,3 +100,17 @@ class Survey:
     model_place: Place
     proposal: Proposal
     place: Place
+
+    @property
+    def sources(self) -> dict[str, str]:
+        """Where each part of the survey comes from, by its name; empty where the file gives no source."""
+        found = {"file": self.source, "zero": self.zero.source, "propose": self.proposal.source}
+        rules = self.rules
+        if any((rules.closure, rules.steady, rules.flow_ratio, rules.gap)):
+            found["rules"] = rules.source
+        if self.heat_loss is not None:
+            found["heat loss"] = self.heat_loss.source
+        for column in self.columns.values():
+            if column.low is not None or column.drift is not None:
+                found[f"column {column.head}"] = column.source
+        return found | {f"cleaning {one.text}": one.source for one in self.cleanings}

@@ -229,7 +229,7 @@ def _scatter(data: Data, slopes: Array, parameters: Array) -> tuple[Array, float
     try:
         gain = np.linalg.solve(normal * np.outer(scale, scale), slopes)
     except np.linalg.LinAlgError:
-        return np.full((len(parameters), len(parameters)), np.inf), np.inf
+        return np.full((len(parameters), len(parameters)), np.nan), np.inf
     count = int(data.cycles.max()) + 1
     anchors = np.bincount(data.cycles[data.zero], minlength=count)
     shared = np.array([np.bincount(data.cycles, weights=row, minlength=count) for row in gain])

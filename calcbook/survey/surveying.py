@@ -471,20 +471,9 @@ class _Survey:
 
     def open_items(self, outcome: SurveyOutcome) -> tuple[OpenItem, ...]:
         """Figures without a source, and a model that the data do not determine."""
-        survey = self.survey
-        sources = {"file": survey.source, "zero": survey.zero.source, "propose": survey.proposal.source}
-        if any((survey.rules.closure, survey.rules.steady, survey.rules.flow_ratio, survey.rules.gap)):
-            sources["rules"] = survey.rules.source
-        if survey.heat_loss is not None:
-            sources["heat loss"] = survey.heat_loss.source
-        for column in survey.columns.values():
-            if column.low is not None or column.drift is not None:
-                sources[f"columns, {column.symbol}"] = column.source
-        for cleaning in survey.cleanings:
-            sources[f"cleaning {cleaning.text}"] = cleaning.source
         return tuple(
             OpenItem(f"survey/{name}/source", "source", f"What the survey states under {name} has no source.")
-            for name, source in sources.items()
+            for name, source in self.survey.sources.items()
             if source.strip(" .").casefold() in EMPTY_SOURCES
         ) + self.fit_items(outcome)
 

@@ -123,7 +123,7 @@ def test_a_survey_without_sources_has_open_items(tmp_path: Path, rows: list[list
         "survey/zero/source",
         "survey/propose/source",
         "survey/heat loss/source",
-        "survey/columns, T_hi/source",
+        "survey/column TI-1111/source",
         "survey/cleaning 2025-02-03 06:00/source",
     } <= items
 

@@ -12,6 +12,7 @@ from survey_calculations import SURVEY, surveyed_alone
 
 from calcbook.chain.outcome import Solved
 from calcbook.chain.survey_outcome import SurveyOutcome
+from calcbook.interface import record_text
 from calcbook.survey.rows import read_moments, read_numbers
 
 TRUTH = Truth(errors=drawn(7))
@@ -145,6 +146,16 @@ def test_a_row_at_which_a_method_leaves_its_range_is_rejected(
     assert (found.count, found.first) == (1, "row 201")
     assert "gnielinski-1976" in found.limit
     assert adds_up(outcome)
+
+
+def test_rows_that_never_change_determine_nothing_and_say_so(
+    tmp_path: Path, solved: Solved, whole: list[list[str]]
+) -> None:
+    rows = [[row[0], *whole[0][1:]] for row in whole]
+    found = surveyed_alone(tmp_path, solved, rows)
+    assert "survey/fit" in {item.id for item in found.open_items}
+    assert np.isnan(found.base.results["allowance_upper"].value)
+    assert "not known" in record_text(found)
 
 
 def test_a_time_in_hours_gives_what_dates_give(outcome_of: Outcomes, whole: list[list[str]]) -> None:

@@ -59,6 +59,9 @@ def _documents(page: Page) -> list[Block]:
     for one in stated.correlations if stated is not None else ():
         names = f"{written_name(one.first)} and {written_name(one.second)}"
         found.setdefault(one.source, []).append(f"correlation of {names}")
+    survey = page.calculation.survey
+    for name, source in survey.sources.items() if survey is not None else ():
+        found.setdefault(source, []).append(f"{name} of the survey")
     rows = tuple((source, "; ".join(names)) for source, names in found.items() if source)
     if not rows:
         return []

@@ -19,6 +19,7 @@ from calcbook.record.numbers import (
 from calcbook.record.page import Page, case_name, counted
 from calcbook.record.sections.duty import brief_rows
 from calcbook.record.sections.growth import time_brief_rows
+from calcbook.record.sections.survey import survey_brief_rows
 from calcbook.record.sections.uncertainty import how_sure
 
 
@@ -102,6 +103,7 @@ def _brief_rows(page: Page) -> list[tuple[str, str, str]]:
         rows.append(("Excess surface for fouling", percent(excess.value), "U_clean/U_service − 1"))
     rows += brief_rows(page)
     rows += time_brief_rows(page)
+    rows += survey_brief_rows(page)
     for name, title in (
         ("heat_flow_service", "Heat flow in service, inside to outside"),
         ("heat_flow_clean", "Heat flow clean, inside to outside"),

@@ -8,7 +8,14 @@ from calcbook.chain.survey_outcome import FittedFigure, PlotColumn, SurveyOutcom
 from calcbook.formulas.names import written_name
 from calcbook.quantities import in_unit, unit_factor
 from calcbook.record.blocks import Block, Bullets, Code, Heading, Paragraph, Table
-from calcbook.record.numbers import NOT_KNOWN, number, percent, unit_text
+from calcbook.record.numbers import (
+    CONCLUSION_DIGITS,
+    NOT_KNOWN,
+    in_report_unit,
+    number,
+    percent,
+    unit_text,
+)
 from calcbook.record.page import Page, counted
 from calcbook.record.survey import DIGITS
 
@@ -35,6 +42,21 @@ def survey(page: Page) -> list[Block]:
 
 def _days(seconds: float) -> str:
     return f"{number(in_unit(seconds, 'days'), DIGITS)} days" if math.isfinite(seconds) else NOT_KNOWN
+
+
+def survey_brief_rows(page: Page) -> list[tuple[str, str, str]]:
+    """The allowance that the survey proposes, for the conclusion."""
+    outcome, proposed = page.solved.survey, page.result("allowance_proposed")
+    if outcome is None or proposed is None:
+        return []
+    basis = f"{proposed.title}; {outcome.model} on {counted(outcome.fitted, 'row', 'rows')} of plant data"
+    return [
+        (
+            "Fouling allowance proposed",
+            in_report_unit(proposed.value, proposed.kind, page.calculation.report, CONCLUSION_DIGITS),
+            basis,
+        )
+    ]
 
 
 # -- rows --------------------------------------------------------------------------------------------
