@@ -95,7 +95,7 @@ def _methods(chain: Chain, slopes: Mapping[str, Array]) -> tuple[list[Part], lis
 def _givens(chain: Chain, slopes: Mapping[str, Array], columns: Mapping[str, Array]) -> list[Part]:
     """The givens with a tolerance; their faults are told where the budget is made."""
     parts = []
-    for one in stated_figures(chain, "", Collector()):
+    for one in stated_figures(chain, Collector()):
         symbol, item = one.line.symbol, chain.inputs[one.id]
         given = chain.calculation.givens[symbol]
         if given.tolerance is None or one.id not in slopes:
