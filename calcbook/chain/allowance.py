@@ -52,6 +52,8 @@ def _largest(
     # A rise of the figure by 1 raises the resistance on the basis area by this much.
     weight = sum(basis / service.number(chain.surfaces[layer.surface].area) for layer in layers)
     resistance, there = service.number(figure), service.number(chain.results["U"])
+    if not needed > 0.0 or not there > 0.0:
+        return math.nan
     for _ in range(MAXIMUM_PASSES):
         missing = (1.0 / needed - 1.0 / there) / weight
         if abs(missing) * weight * needed <= AGREEMENT:

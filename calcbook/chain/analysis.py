@@ -53,7 +53,7 @@ from calcbook.chain.pressure import (
     pressure_notes,
 )
 from calcbook.chain.sensitivity import derivatives
-from calcbook.chain.solve import Solution, chosen, solve
+from calcbook.chain.solve import Solution, chosen, closed, solve
 from calcbook.chain.specified import OWNER as SPECIFIED
 from calcbook.chain.types import (
     CLEAN,
@@ -112,6 +112,8 @@ class _Analysis:
     def solved(self) -> Solved | None:
         names = ("", *self.chain.calculation.cases)
         self.inputs = {name: completed(self.chain, self.chain.case_inputs(name)) for name in names}
+        if not self._figures_are_found():
+            return None
         findings = {
             name: stream_findings(self.chain, name, self.inputs[name], self.collector) for name in names
         }
@@ -137,6 +139,19 @@ class _Analysis:
             self.used_cards,
             _governing(cases, self.chain.calculation.places),
         )
+
+    def _figures_are_found(self) -> bool:
+        """Whether every open figure has a value; a stop limit that explains a missing one is a fault.
+
+        Raises ``NotConverged`` where none does.
+        """
+        for name, inputs in self.inputs.items():
+            if all(np.isfinite(inputs[item.id]).all() for item in self.chain.open_figures):
+                continue
+            self._stop_if_limit(name, closed(self.chain, inputs, SERVICE))
+            if not self.collector:
+                raise NotConverged(self.chain.calculation.number, name, SERVICE)
+        return not self.collector
 
     # -- one case -----------------------------------------------------------------------------------
 

@@ -182,6 +182,13 @@ class DutyLayout:
             "mass flow and heat capacity at the mean temperature",
             "conductance",
         )
+        self._check(
+            f"ends / {name} flow",
+            "m > 0",
+            "stop",
+            "a stream without flow carries no heat",
+            {"m": state.mass_flow},
+        )
 
     def _mean_check(self, name: str, state: StreamState | None) -> None:
         """A stated temperature of a stream beside the mean of its ends."""
