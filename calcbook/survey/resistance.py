@@ -6,7 +6,7 @@ row's own flows and temperatures; the card of plant data makes the fouling resis
 
 from __future__ import annotations
 
-from collections.abc import Collection, Mapping
+from collections.abc import Collection, Mapping, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -14,7 +14,7 @@ import numpy as np
 from calcbook.chain.checks import OUTSIDE, check_states
 from calcbook.chain.factors import with_factors
 from calcbook.chain.sensitivity import derivatives
-from calcbook.chain.solve import Solution, solve
+from calcbook.chain.solve import PIECE, Solution, solve
 from calcbook.chain.types import CLEAN, Chain, ChainCheck
 from calcbook.formulas import evaluate, parse_expression, write
 from calcbook.library.cards import Assignment, Limit
@@ -113,13 +113,24 @@ def inputs_of(chain: Chain, columns: Mapping[str, Array]) -> dict[str, Array]:
 
 
 def resistances(chain: Chain, columns: Mapping[str, Array], loss: float) -> Found:
-    """The fouling resistance of every row on the basis area; ``loss`` is the part that the hot stream loses."""
-    way = _way(chain)
-    wanted = dict.fromkeys(name for name in way.bound.values() if name)
-    limits = _range_limits(chain)
-    asked = [name for limit in limits for name in limit.names]
-    solution = solve(_only(chain, wanted), inputs_of(chain, columns), CLEAN, keep={*wanted, *asked})
+    """The fouling resistance of every row on the basis area; ``loss`` is the part that the hot stream loses.
+
+    Many rows are taken in pieces, so that the arrays on the way stay in the processor's cache.
+    """
+    way, limits = _way(chain), _range_limits(chain)
+    wanted = {name for name in way.bound.values() if name}
+    asked = {name for limit in limits for name in limit.names}
+    shorter = _only(chain, wanted)
     count = len(next(iter(columns.values())))
+    found = []
+    for start in range(0, count, PIECE):
+        part = {symbol: figures[start : start + PIECE] for symbol, figures in columns.items()}
+        solution = solve(shorter, inputs_of(chain, part), CLEAN, keep=wanted | asked)
+        found.append(_found(way, limits, solution, loss, min(PIECE, count - start)))
+    return joined(found)
+
+
+def _found(way: _Way, limits: tuple[_RangeLimit, ...], solution: Solution, loss: float, count: int) -> Found:
     values = way.values(solution, loss, count)
     with np.errstate(all="ignore"):
         run(way.steps, values)
@@ -140,6 +151,30 @@ def resistances(chain: Chain, columns: Mapping[str, Array], loss: float) -> Foun
             beyond |= used & (check_states(limit.check, solution.values) == OUTSIDE)
     return Found(
         told(way.program.result), told("U"), told("U_c"), closure, told("F"), outside, beyond, tuple(methods)
+    )
+
+
+def joined(parts: Sequence[Found]) -> Found:
+    """Pieces put together again, in their order; nothing where there is no row."""
+    if len(parts) == 1:
+        return parts[0]
+
+    def whole(name: str) -> Array:
+        return np.concatenate([getattr(part, name) for part in parts] or [np.zeros(0)])
+
+    outside = tuple(
+        (limit, np.concatenate([part.outside[number][1] for part in parts]))
+        for number, (limit, _) in enumerate(parts[0].outside if parts else ())
+    )
+    return Found(
+        whole("resistance"),
+        whole("coefficient"),
+        whole("clean"),
+        whole("closure"),
+        whole("factor"),
+        outside,
+        whole("beyond").astype(bool),
+        tuple(dict.fromkeys(name for part in parts for name in part.methods)),
     )
 
 

@@ -140,12 +140,7 @@ class _Survey:
         """The resistance of the rows left, the two rules that need it, and what each row counts for."""
         places = np.flatnonzero(sieve.left)
         columns = {symbol: figures[places] for symbol, figures in rows.columns.items()}
-        empty = np.zeros(0)
-        found = (
-            resistances(self.chain, columns, self.loss)
-            if len(places)
-            else Found(empty, empty, empty, empty, empty, (), empty.astype(bool), ())
-        )
+        found = resistances(self.chain, columns, self.loss)
         self.reject(
             sieve,
             places,
