@@ -62,9 +62,9 @@ class Sieve:
     not_compared: int = 0
 
     def reject(self, name: str, rejects: str, limit: str, broken: Array | None) -> None:
-        """Apply a rule: the rows left that ``broken`` marks. None: the rule has no limit."""
+        """Apply a rule: the rows left that ``broken`` marks. None: it is not applied, ``limit`` may say why."""
         if broken is None:
-            self.rules.append(RuleCount(name, rejects, NOT_APPLIED, 0, ""))
+            self.rules.append(RuleCount(name, rejects, limit or NOT_APPLIED, 0, ""))
             return
         found = self.left & broken
         self.left = self.left & ~found

@@ -41,6 +41,7 @@ PLOT_COLUMNS = 72
 # Rows that a fit must have beyond its parameters and zeros.
 FEWEST_FREE = 5
 ALLOWANCE = "allowance_fitted"
+ONE_SIDED = "not applied: only one stream shows its heat"
 # How far beyond the longest time since a cleaning in the rows a model may be used without a caution.
 REACH, PERIOD = "1.5", "t_data"
 
@@ -158,16 +159,12 @@ class _Survey:
             limits,
             found.beyond if found.methods else None,
         )
-        limit = self.survey.rules.closure
-        unbalanced = np.abs(found.closure) > limit.value if limit is not None else None
-        text = f"at most {limit.text} either way" if limit is not None else ""
         self.reject(
             sieve,
             places,
             "heat balance closure",
             "what one stream gives and the other takes differ",
-            text,
-            unbalanced,
+            *self.unbalanced(found),
         )
         stays = sieve.left[places]
         times = rows.times[places][stays]
@@ -185,6 +182,15 @@ class _Survey:
             zero,
             has_zero[cycles],
         )
+
+    def unbalanced(self, found: Found) -> tuple[str, Array | None]:
+        """The limit of the closure and the rows beyond it; the reason and None where it is not tested."""
+        limit = self.survey.rules.closure
+        if not np.isfinite(found.closure).any():
+            return ONE_SIDED, None
+        if limit is None:
+            return "", None
+        return f"at most {limit.text} either way", np.abs(found.closure) > limit.value
 
     def reject(
         self, sieve: Sieve, places: Array, name: str, rejects: str, limit: str, broken: Array | None

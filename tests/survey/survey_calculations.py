@@ -130,3 +130,12 @@ def true_figures(truth: Truth) -> dict[str, float]:
         "fitted tau": truth.tau,
         "allowance_fitted": float(truth.deposit(np.array(AFTER))),
     }
+
+
+def columns_of(shown: dict) -> dict[str, np.ndarray]:
+    """What the sensors of a history show, in SI, by symbol of the given."""
+    return {
+        name: figures + 273.15 if name[0] == "T" else figures
+        for name, figures in shown.items()
+        if name != "t"
+    }

@@ -2,10 +2,9 @@
 
 from __future__ import annotations
 
-import numpy as np
 import pytest
 from history import STATED, Truth, drawn, history
-from survey_calculations import true_figures, with_rows
+from survey_calculations import columns_of, true_figures, with_rows
 
 from calcbook.chain.outcome import Solved
 from calcbook.chain.survey_outcome import SurveyOutcome
@@ -62,14 +61,6 @@ def test_the_proposal_is_the_percentile_of_the_fit(solved: Solved) -> None:
     # Standard normal quantiles at 90 % and 97.5 %: 1.281552 and 1.959964 (any table of the distribution).
     part = (results["allowance_proposed"].value - fitted) / (upper - fitted)
     assert part == pytest.approx(1.281552 / 1.959964, rel=1e-6)
-
-
-def columns_of(shown: dict) -> dict[str, np.ndarray]:
-    return {
-        name: figures + 273.15 if name[0] == "T" else figures
-        for name, figures in shown.items()
-        if name != "t"
-    }
 
 
 def test_slopes_of_the_rows_are_those_of_small_steps(solved: Solved) -> None:
