@@ -168,7 +168,7 @@ def test_a_run_into_an_output_that_is_read_only_is_a_fault_and_leaves_the_record
     # Solved with every right, which a checkout in a private folder asks for: what fails below is the writing.
     found = Found(guarded, "wc-101.yaml", folder / "output")
     texts = running.texts_of(found, solve_file(guarded))
-    monkeypatch.setattr(running, "_texts", lambda found: texts)
+    monkeypatch.setattr(running, "solved_texts", lambda found: texts)
     with Unprivileged():
         (outcome,) = run_all([found], 1, lambda outcome: None)
     assert [fault.code for fault in outcome.faults] == ["output-not-writable"]

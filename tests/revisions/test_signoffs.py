@@ -9,7 +9,7 @@ from dataclasses import replace
 from pathlib import Path
 
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 from signed_book import (
     ANSWER,
@@ -506,6 +506,7 @@ def test_any_text_is_read_back_from_its_quotes(text: str) -> None:
     assert value.text == text
 
 
+@settings(deadline=None)  # no test is timed
 @given(TEXTS, TEXTS, TEXTS)
 def test_a_file_of_sign_offs_is_read_back_as_it_was_written(
     tmp_path_factory: pytest.TempPathFactory, solved_work: Work, one: str, two: str, three: str
