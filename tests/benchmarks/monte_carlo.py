@@ -3,8 +3,8 @@
 Run with `python tests/benchmarks/monte_carlo.py`. Both sides draw flow, film, both temperatures and the
 factor of the method, close the wall temperatures to rounding in every sample with the same curves, and end
 with mean, standard uncertainty and a 95 % interval of U in service. The engine draws by the rules of JCGM 101
-(a stream per figure and block, inverse laws) and counts the samples that leave a limit. Prints seconds of the processor, the
-ratio engine / by hand, how far the intervals lie apart, and the memory at its highest.
+(a stream per figure and block, inverse laws) and counts the samples that leave a limit. Prints seconds of the
+processor, the ratio engine / by hand, how far the intervals lie apart, and the memory at its highest.
 """
 
 from __future__ import annotations
