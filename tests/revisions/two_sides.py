@@ -67,8 +67,12 @@ def example(name: str) -> str:
 
 
 def example_side(text: str) -> Side:
-    """A side of an example's text, with the settings and the house cards of the example book."""
-    beside = [EXAMPLES / "book.yaml", *sorted((EXAMPLES / "cards").glob("*.yaml"))]
+    """A side of an example's text, with the settings, histories and house cards of the example book."""
+    beside = [
+        EXAMPLES / "book.yaml",
+        *sorted(EXAMPLES.glob("*.csv")),
+        *sorted((EXAMPLES / "cards").glob("*.yaml")),
+    ]
     return side_of(
         text, {path.relative_to(EXAMPLES).as_posix(): path.read_text(encoding="utf-8") for path in beside}
     )
