@@ -216,6 +216,23 @@ def test_a_sample_alone_and_among_others_gives_the_same_bits(tmp_path: Path, nam
             assert alone.values[wanted][0] == together.values[wanted][index]
 
 
+@pytest.mark.parametrize("name", ["upright", "heated from below", "inclined", "water"])
+def test_random_gaps_close(tmp_path: Path, name: str) -> None:
+    """Over the onset of flow, both directions of heat and films from poor to strong: every sample has its answer."""
+    random, count = np.random.default_rng(20261130), 4000
+    low, high = (5.0, 90.0) if name == "water" else (-60.0, 300.0)
+    found = closed(
+        chain_of(tmp_path, BODIES[name]),
+        T_in=273.15 + random.uniform(low, high, count),
+        T_out=273.15 + random.uniform(low, high, count),
+        s=np.exp(random.uniform(np.log(2e-3), np.log(0.2), count)),
+        h_i=np.exp(random.uniform(0.0, 8.0, count)),
+        h_o=np.exp(random.uniform(0.0, 8.0, count)),
+    )
+    assert found.converged.all()
+    assert (found.values["gas/R"] > 0.0).all()
+
+
 def test_the_hotter_side_chooses_and_the_joint_is_continuous(tmp_path: Path) -> None:
     """A level gap: at rest while the upper side is hotter; at the same temperature both laws are conduction."""
     chain = chain_of(tmp_path, window(BELOW + RADIATION))
