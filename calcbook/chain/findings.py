@@ -83,7 +83,27 @@ def stream_findings(
             elif finding.level == "open item":
                 name = f"stream {state.name}/{finding.code}" + (f"/{case}" if case else "")
                 items.append(OpenItem(name, "state", f"{where}Stream {state.name}: {finding.message}."))
+    _check_gaps(chain, values, collector, case)
     return tuple(items)
+
+
+def _check_gaps(chain: Chain, values: dict[str, Any], collector: Collector, case: str) -> None:
+    """That the fluid of every gap has what its methods ask for.
+
+    Its own temperature comes with the solution, where its phase is checked; between both streams' means stands for
+    it here, and only what no temperature mends is told.
+    """
+    for layer, gap in gaps(chain):
+        stated = (gap.fluid.pressure, gap.fluid.fraction)
+        run([step for step in layer.steps if step.id in stated and step.id not in values], values)
+        fluid = _fluid_at(gap.fluid, values, collector)
+        between = (float(values[chain.inner.bulk]) + float(values[chain.outer.bulk])) / 2.0
+        for finding in fluid.check_state(between, gap.fluid.phase or None) if fluid is not None else ():
+            if finding.code.endswith("-model"):
+                where = f"case {case}: " if case else ""
+                collector.add(
+                    finding.code, gap.fluid.place, f"{where}gap {gap.fluid.name}: {finding.message}"
+                )
 
 
 def _glide_items(chain: Chain, state: StreamState, temperature: float, case: str) -> list[OpenItem]:

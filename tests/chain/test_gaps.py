@@ -327,6 +327,19 @@ def test_faults_of_gaps(tmp_path: Path, body: str, code: str, words: str) -> Non
     ]
 
 
+def test_a_gauge_pressure_stands_on_the_site(tmp_path: Path) -> None:
+    gauge = analysed(tmp_path, window(p="0.5 barg"))
+    absolute = analysed(tmp_path, window(p="1.51325 bara"))
+    for name in ("U_service", "heat_flow_service"):
+        assert gauge.base.results[name].value == pytest.approx(absolute.base.results[name].value, rel=1e-12)
+
+
+def test_a_fluid_without_a_model_is_told_before_anything_is_solved(tmp_path: Path) -> None:
+    collector = Collector()
+    assert analyse(chain_of(tmp_path, window(fluid="krypton")), collector) is None
+    assert {fault.code for fault in collector} == {"no-conductivity-model", "no-viscosity-model"}
+
+
 def test_a_gap_belongs_between_plane_walls(tmp_path: Path) -> None:
     body = window().replace(
         "{shape: plane, height: H, width: W}", "{shape: tube, inside diameter: W, length: H}"
