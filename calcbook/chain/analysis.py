@@ -17,7 +17,7 @@ from calcbook.chain.circuit import branch_coefficient
 from calcbook.chain.completing import completed
 from calcbook.chain.duty import OWNER as DUTY
 from calcbook.chain.duty import duty_results, is_of_duty
-from calcbook.chain.ends import end_checks
+from calcbook.chain.ends import end_checks, end_states, end_surfaces
 from calcbook.chain.films import SATURATED_SIDES
 from calcbook.chain.findings import (
     assumptions_of,
@@ -168,8 +168,11 @@ class _Analysis:
                     return None
                 raise NotConverged(self.chain.calculation.number, name, condition)
             evaluate_pressure_drops(self.chain, solution)
+        ends = end_states(self.chain, inputs, solutions)
         results = self._results(solutions, inputs)
-        checks = (*self._checks(name, solutions), *end_checks(self.chain, name, inputs, solutions))
+        kind = vocabulary()["temperature"]
+        results |= {name: Result(name, value, kind, title) for name, value, title in end_surfaces(ends)}
+        checks = (*self._checks(name, solutions), *end_checks(ends, name))
         for check in checks:
             if check.level == "stop" and check.state == "outside":
                 self._report_stop(check)
@@ -321,7 +324,10 @@ class _Analysis:
         put("excess_surface", clean / service - 1.0, "ratio", "excess surface, U_clean/U_service − 1")
         for condition, solution in reversed(list(solutions.items())):
             for name, value in self._interfaces(solution):
-                put(f"T {name} {condition}", value, "temperature", f"temperature {name}, {condition}")
+                at_mean = ", at the mean temperatures" if self.chain.calculation.duty is not None else ""
+                put(
+                    f"T {name} {condition}", value, "temperature", f"temperature {name}, {condition}{at_mean}"
+                )
             for element in self.chain.elements:
                 if isinstance(element, Group):
                     put(

@@ -1,9 +1,9 @@
-"""Both ends of a unit with a duty: what the fluid does at the wall where its streams enter and leave."""
+"""Both ends of a unit with a duty: its surfaces there, and what the fluid does at the wall."""
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import replace
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -17,35 +17,64 @@ Array = np.ndarray
 PLACES = ("at the hot inlet", "at the hot outlet")
 
 
-def end_checks(
-    chain: Chain, case: str, inputs: Mapping[str, Array], solutions: Mapping[str, Solution]
-) -> list[CheckResult]:
-    """Against boiling, condensing and freezing at the wall at both ends, in every condition of a case.
+@dataclass(frozen=True)
+class EndState:
+    """The circuit at one end of the unit in one condition: the chain with the ends put in, and its solution."""
 
-    The hot inlet meets the cold outlet, but in parallel flow the cold inlet. A case that does not close at an
-    end has no check there.
+    chain: Chain
+    place: str
+    solution: Solution
+
+
+def end_states(
+    chain: Chain, inputs: Mapping[str, Array], solutions: Mapping[str, Solution]
+) -> tuple[EndState, ...]:
+    """Both ends in every condition of a single record; empty without a duty or temperatures.
+
+    The hot inlet meets the cold outlet, but in parallel flow the cold inlet. An end at which the circuit does
+    not close is left out.
     """
     duty = chain.calculation.duty
     if duty is None or not chain.has_temperatures:
-        return []
+        return ()
     orders = {"hot": ("inlet", "outlet"), "cold": ("outlet", "inlet")}
     if duty.arrangement == "parallel flow":
         orders["cold"] = orders["hot"]
-    figures = {}
-    for name, side in duty.sides.items():
-        if f"T {name} mean" not in chain.results:
-            continue
-        bulk = chain.streams[side.stream].temperature
-        any_solution = next(iter(solutions.values()))
-        figures[bulk] = np.array(
+    any_solution = next(iter(solutions.values()))
+    figures = {
+        chain.streams[side.stream].temperature: np.array(
             [any_solution.number(chain.results[f"T {name} {end}"]) for end in orders[name]]
         )
+        for name, side in duty.sides.items()
+        if f"T {name} mean" in chain.results
+    }
     one, given = with_figures(chain, inputs, figures)
-    found: list[CheckResult] = []
+    found = []
     for condition in solutions:
         both = solve(one, given, condition)
         for number, place in enumerate(PLACES):
             if both.converged.reshape(-1)[number]:
-                checks = wall_checks(one, case, both.sample(number))
-                found += [replace(check, id=f"{check.id} {place}") for check in checks]
-    return found
+                found.append(EndState(one, place, both.sample(number)))
+    return tuple(found)
+
+
+def end_checks(states: tuple[EndState, ...], case: str) -> list[CheckResult]:
+    """Against boiling, condensing and freezing at the wall at both ends."""
+    return [
+        replace(check, id=f"{check.id} {state.place}")
+        for state in states
+        for check in wall_checks(state.chain, case, state.solution)
+    ]
+
+
+def end_surfaces(states: tuple[EndState, ...]) -> Iterator[tuple[str, float, str]]:
+    """Result name, temperature and title of both wetted surfaces at both ends."""
+    for state in states:
+        condition = state.solution.condition
+        for group in (state.chain.inner, state.chain.outer):
+            surface = f"{group.side} surface"
+            yield (
+                f"T {surface} {condition} {state.place}",
+                state.solution.number(group.surface_temperature),
+                f"temperature {surface}, {condition}, {state.place}",
+            )

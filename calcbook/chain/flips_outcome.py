@@ -41,6 +41,11 @@ class Flip:
     tolerances: float
     steps: float
 
+    @property
+    def is_within_tolerance(self) -> bool:
+        """Whether the stated tolerance reaches the flip."""
+        return abs(self.tolerances) <= 1.0
+
 
 @dataclass(frozen=True, slots=True)
 class Searched:
@@ -57,7 +62,9 @@ class Searched:
 
 @dataclass(frozen=True, slots=True)
 class Flips:
-    """Every distance to flip, nearest first within its kind, and the ranges that were searched.
+    """Every distance to flip, and the ranges that were searched.
+
+    Within a kind stands first what its own tolerance reaches, then the nearest.
 
     ``unsettled`` names in words what flips somewhere, but at no figure with a few digits.
     """

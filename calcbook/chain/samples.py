@@ -55,7 +55,7 @@ LIMIT_WORDS = ("within", "outside", "accepted", "not counting")
 HELD, BROKEN, ACCEPTED, IDLE = range(len(LIMIT_WORDS))
 # From the places of the states of a single limit.
 _CODE_OF_STATE = np.array([HELD, BROKEN, NO_VERDICT, IDLE])
-NO_CONTROLLING = "none"
+NO_CONTROLLING = "no controlling term"
 OPEN_CIRCUIT = "the circuit does not close"
 TURNED = "the heat flow turns round"
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 
 from calcbook.quantities import QuantityKind
@@ -135,6 +136,17 @@ class SurveyOutcome:
     after: float
     percentile: float
     plot: tuple[PlotColumn, ...]
+
+    @property
+    def offsets_differ_by(self) -> float:
+        """How far the offsets of the cleanings lie apart, m² K/W; 0 where there are not two."""
+        offsets = [cycle.offset for cycle in self.cycles if math.isfinite(cycle.offset)]
+        return max(offsets) - min(offsets) if len(offsets) > 1 else 0.0
+
+    @property
+    def offsets_scatter(self) -> float:
+        """Standard uncertainty of that difference from the scatter of the rows alone; the rest is common to all."""
+        return math.hypot(*(cycle.scatter for cycle in self.cycles if math.isfinite(cycle.offset)))
 
     def figure(self, name: str) -> FittedFigure:
         """A fitted figure by id. Raises ``KeyError``."""

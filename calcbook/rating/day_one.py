@@ -13,13 +13,14 @@ import numpy as np
 
 from calcbook.calcfile import Calculation
 from calcbook.chain.build import build
+from calcbook.chain.checks import evaluate_check
 from calcbook.chain.completing import completed
-from calcbook.chain.ends import end_checks
+from calcbook.chain.ends import end_checks, end_states
 from calcbook.chain.findings import wall_checks
 from calcbook.chain.outcome import CheckResult, Solved
 from calcbook.chain.plausible import band_checks
 from calcbook.chain.rating_outcome import DayOne, SideState, UnitState
-from calcbook.chain.solve import Solution, solve
+from calcbook.chain.solve import Solution, chosen, solve
 from calcbook.chain.types import CLEAN, SERVICE, Branch, Chain, Group
 from calcbook.chain.variants import with_figures
 from calcbook.faults import Collector
@@ -104,6 +105,13 @@ def _turned_down(solved: Solved) -> tuple[UnitState | None, str, list[CheckResul
     opened = _with_open_cold_outlet(solved)
     if opened is None:
         return None, "the duty does not follow from the hot stream alone", []
+    fixed = _stated_without_scale(solved, duty.cold.stream)
+    if fixed:
+        return (
+            None,
+            f"the coefficient of {fixed} is stated, and nothing says how it follows the flow",
+            [],
+        )
     stated = solved.base.solutions[SERVICE].number(flow)
     low, high = SMALLEST_PART * stated, stated
     inputs = opened.case_inputs("")
@@ -120,6 +128,14 @@ def _turned_down(solved: Solved) -> tuple[UnitState | None, str, list[CheckResul
     given = completed(one, given)
     solution = solve(one, given, CLEAN)
     return _state(one, solution), "", _checks(one, given, solution, "turned down")
+
+
+def _stated_without_scale(solved: Solved, stream: str) -> str:
+    """The film of a stream whose stated coefficient stays as it is at another flow; empty where there is none."""
+    for term in solved.chain.calculation.resistances:
+        if term.texts.get("stream") == stream and "coefficient" in term.values and term.scales_with is None:
+            return term.name
+    return ""
 
 
 def _with_open_cold_outlet(solved: Solved) -> Chain | None:
@@ -171,9 +187,24 @@ def _film_of(chain: Chain, stream: str) -> tuple[Group, Branch]:
     )
 
 
+def _ranges(chain: Chain, solution: Solution) -> list[CheckResult]:
+    """The ranges that the films' coefficients hold for, methods and stated ones."""
+    return [
+        evaluate_check(check, solution, "", chain.dimensions)
+        for group in (chain.inner, chain.outer)
+        for branch in group.branches
+        for check in chosen(branch, solution).checks
+        if check.limit.level == "range"
+    ]
+
+
 def _checks(chain: Chain, inputs: Mapping[str, Array], solution: Solution, state: str) -> list[CheckResult]:
     """Phases at the wall, at the means and at both ends, and figures outside their bands, of the clean unit."""
-    phases = [*wall_checks(chain, "", solution), *end_checks(chain, "", inputs, {CLEAN: solution})]
+    phases = [
+        *wall_checks(chain, "", solution),
+        *end_checks(end_states(chain, inputs, {CLEAN: solution}), ""),
+    ]
     found = [check for check in phases if check.state != "within"]
+    found += [check for check in _ranges(chain, solution) if check.state in ("outside", "not evaluable")]
     found += band_checks(chain, "", solution)
     return [replace(check, condition=state) for check in found]

@@ -400,7 +400,7 @@ class _Survey:
             "allowance_proposed": (
                 proposed,
                 kind,
-                f"allowance {on}, large enough with {proposal.percentile.text}",
+                f"one-sided {proposal.percentile.text} limit of the fitted curve, above the zero after a cleaning, {on}",
             ),
             ALLOWANCE: (fitted.value, kind, f"fouling resistance of the fit {on}"),
             "allowance_lower": (fitted.lower, kind, f"lower 95 % bound of the fouling resistance {on}"),

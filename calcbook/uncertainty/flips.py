@@ -214,7 +214,10 @@ class _Search:
             self._evaluate(wanted)
         found, unsettled = self._reported()
         order = {kind: place for place, kind in enumerate((CRITERION, LIMIT, METHOD, CONTROLLING))}
-        found.sort(key=lambda flip: (order[flip.kind], float(f"{flip.steps:.6g}")))
+        # What its own tolerance can flip comes first: it may be so already.
+        found.sort(
+            key=lambda flip: (order[flip.kind], not flip.is_within_tolerance, float(f"{flip.steps:.6g}"))
+        )
         return Flips(tuple(found), tuple(self._searched()), unsettled)
 
     # -- samples ------------------------------------------------------------------------------------

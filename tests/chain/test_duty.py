@@ -43,13 +43,14 @@ resistances:
   - {{name: inner film, kind: film, coefficient: h, on: outside, stream: hot}}
   - {{name: deposit, kind: fouling, resistance: R_f, on: outside}}
   - {{name: wall, kind: wall, conductivity: {{value: 400 W/(m K), source: s}}}}
-  - {{name: outer film, kind: film, coefficient: h, on: outside, stream: cold}}
+  - {{name: outer film, kind: film, coefficient: h, on: outside, stream: cold, scales with: m_c/m_c}}
 duty:
   arrangement: {arrangement}
 {shells}  hot: {{stream: hot, inlet: T_hi{hot_outlet}}}
   cold: {{stream: cold, inlet: T_ci{cold_outlet}}}
 report: {{U on: outside}}
 """
+RATED = Path(__file__).resolve().parent.parent / "cases" / "ok" / "rated-cooler.yaml"
 # W.M. Kreith, R.M. Manglik, M.S. Bohn, Principles of Heat Transfer, 7th ed., example 8.1: inputs read in a public
 # companion; U is 568 W/(m² K), so both films together have that coefficient.
 KREITH = {
@@ -246,6 +247,26 @@ def test_day_one_is_the_clean_unit_with_open_outlets(tmp_path: Path) -> None:
     assert figure(turned, "T_hot_outlet") == pytest.approx(39.4 + 273.15, abs=1e-6)
 
 
+def test_a_stated_film_that_knows_no_flow_is_not_turned_down() -> None:
+    day = solve_file(RATED).rating.day_one
+    assert day is not None and day.turned_down is None
+    assert (
+        day.no_turn_down
+        == "the coefficient of shell-side film is stated, and nothing says how it follows the flow"
+    )
+
+
+def test_both_ends_have_their_surfaces(tmp_path: Path) -> None:
+    """By hand: with equal films inside and outside and no wall to speak of, a clean surface lies between its fluids."""
+    answer = solved(tmp_path, length="900 m")
+    middle = (65.6 + figure(answer, "T_cold_outlet") - 273.15) / 2.0 + 273.15
+    at_end = figure(answer, "T outside surface clean at the hot inlet")
+    assert at_end == pytest.approx(middle, abs=0.05)
+    # It is hotter there than at the mean temperatures, which a criterion on the surface must not hide.
+    assert at_end > figure(answer, "T outside surface clean")
+    assert answer.base.results["T outside surface clean"].title.endswith("at the mean temperatures")
+
+
 def test_parts_of_constant_properties_add_up_to_one(tmp_path: Path) -> None:
     answer = solved(tmp_path, shells="  parts: 5\n", length="900 m")
     parts = answer.rating.parts
@@ -299,9 +320,6 @@ def test_fouling_specified_for_the_whole_unit(tmp_path: Path, way: str, value: s
     )
     answer = solve_file(path)
     assert figure(answer, "cleanliness") == pytest.approx(ratio, rel=1e-12)
-
-
-RATED = Path(__file__).resolve().parent.parent / "cases" / "ok" / "rated-cooler.yaml"
 
 
 def test_a_method_factor_has_its_own_line_in_the_ledger() -> None:

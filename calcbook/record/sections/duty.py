@@ -246,12 +246,13 @@ def day_one_blocks(page: Page) -> list[Block]:
         return []
     states = {"with the allowances": day.service, "clean": day.clean}
     if day.turned_down is not None:
-        states["clean, turned down to the duty"] = day.turned_down
+        states["clean, turned down to the stated hot outlet"] = day.turned_down
     blocks: list[Block] = [
         Heading(3, "Day one"),
         Paragraph(
             "The unit at the inlets of the duty, its outlets found by effectiveness: with its allowances, clean,"
-            " and clean with the cold flow turned down until it gives no more than the duty."
+            " and clean with the cold flow turned down until the hot stream leaves as the duty states. Turning down the cold"
+            " flow is one way of control, taken here for its bearing on deposits."
         ),
         Table(("Figure", *states), tuple(_state_rows(page, list(states.values())))),
     ]
@@ -265,12 +266,15 @@ def day_one_blocks(page: Page) -> list[Block]:
             (check.id, check.condition, check.figure, check.limit, verdict(check)) for check in day.checks
         )
         blocks += [
-            Paragraph("Limits and usual windows that the clean unit leaves:"),
+            Paragraph("Limits, ranges and usual windows that the clean unit leaves:"),
             Table(("Check", "State", "Figure", "Limit", "Verdict"), rows),
         ]
     else:
         blocks.append(
-            Paragraph("The clean unit neither boils nor freezes at the wall and leaves no usual window.")
+            Paragraph(
+                "The clean unit neither boils nor freezes at the wall, and every figure stays within its range and"
+                " usual window."
+            )
         )
     return blocks
 
@@ -312,16 +316,17 @@ def _sentences(page: Page, day: DayOne) -> tuple[str, ...]:
         )
     if day.turned_down is not None:
         found.append(
-            f"To give no more than the duty the clean unit runs at {percent(day.flow_part)} of the cold flow; the"
+            f"With the stated hot outlet the clean unit runs at {percent(day.flow_part)} of the cold flow; the"
             f" surface on the cold side then stands {kelvin(day.turned_down_hotter)} above that with the allowances."
         )
         if day.is_slow:
             found.append(
-                "At that flow a speed lies outside its usual window: the allowance breeds its own fouling."
+                "At that flow a speed lies outside its usual window: the allowances, on whichever side, breed"
+                " fouling on the cold side."
             )
         elif day.turned_down_hotter > HOTTER:
             found.append(
-                "Less flow and a hotter surface both favour deposits on the cold side: the allowance may breed its own"
-                " fouling."
+                "Less flow and a hotter surface both favour deposits on the cold side, whichever side the allowances stand"
+                " on."
             )
     return tuple(found)

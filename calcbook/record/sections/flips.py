@@ -6,7 +6,7 @@ import math
 
 from calcbook.chain.flips_outcome import CONTROLLING, CRITERION, LIMIT, METHOD, Flip, Flips, Searched
 from calcbook.formulas.names import written_name
-from calcbook.record.blocks import Block, Heading, Paragraph, Table
+from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Table
 from calcbook.record.numbers import CONCLUSION_DIGITS, MOST_DIGITS, PLAIN_DIGITS, number, unit_text, with_unit
 from calcbook.record.page import Page, case_name
 
@@ -30,12 +30,13 @@ def flips(page: Page) -> list[Block]:
     words = (
         f"The smallest change of one given, the other figures as they stand, with which a verdict of {cases}"
         " is another one; the circuit was solved at every figure named here. At the figure under “Flips at”"
-        " the verdict has flipped; with its last digit one nearer to the present figure it has not. Nearest"
-        " first, by the change in per cent of the figure; 1 K of a temperature counts as 1 %. A tolerance is"
-        " counted as the file states it. Whole numbers step by one. Plausible bands are not searched, and a"
-        " verdict that flips and flips back between two figures of the search is not seen."
+        " the verdict has flipped; with its last digit one nearer to the present figure it has not. What its"
+        " own tolerance can flip stands first, then the nearest, by the change in per cent of the figure; 1 K of a"
+        " temperature counts as 1 %. A tolerance is counted as the file states it. Whole numbers step by one."
+        " Plausible bands are not searched, and a verdict that flips and flips back between two figures of the"
+        " search is not seen."
     )
-    blocks: list[Block] = [Heading(3, "Distance to flip"), Paragraph(words)]
+    blocks: list[Block] = [Heading(3, "Distance to flip"), Paragraph(words), *_alone(page)]
     for kind in TITLES:
         blocks += _kind(page, found, kind)
     if found.unsettled:
@@ -44,6 +45,20 @@ def flips(page: Page) -> list[Block]:
         )
         blocks.append(Paragraph(words + "; ".join(found.unsettled) + "."))
     return [*blocks, Heading(4, "Range searched"), _searched(found)]
+
+
+def _alone(page: Page) -> list[Block]:
+    """What moves with a figure that is changed alone, where an engineer would not expect it."""
+    notes = []
+    if page.result("closure") is not None:
+        notes.append(
+            "A flow or an end of the duty changed alone opens the heat balance: the duty is the mean of both streams,"
+            " and the limits of its closure stand among the limits below."
+        )
+    geometry = page.calculation.geometry
+    if geometry is not None and {"inside diameter", "outside diameter"} <= set(geometry.dimensions):
+        notes.append("A diameter changed alone changes the thickness of the wall with it.")
+    return [Bullets(tuple(notes))] if notes else []
 
 
 def _kind(page: Page, found: Flips, kind: str) -> list[Block]:

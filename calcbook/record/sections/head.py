@@ -20,7 +20,7 @@ from calcbook.record.page import Page, case_name, counted
 from calcbook.record.sections.duty import brief_rows
 from calcbook.record.sections.growth import time_brief_rows
 from calcbook.record.sections.survey import survey_brief_rows
-from calcbook.record.sections.uncertainty import how_sure
+from calcbook.record.sections.uncertainty import certainty_words, how_sure
 
 
 def confirmation(page: Page) -> str:
@@ -125,9 +125,20 @@ def _pressure_rows(page: Page) -> list[tuple[str, str, str]]:
             result = page.result(f"dp {branch.stream}_{condition}")
             if result is not None:
                 value = in_report_unit(result.value, result.kind, page.calculation.report, CONCLUSION_DIGITS)
-                basis = f"{drop.total.method.id}, at {group.name}"
+                basis = f"{drop.total.method.id}, at {group.name}{_deposit_words(page, condition)}"
                 rows.append((f"Pressure drop of {branch.stream}, {words}", value, basis))
     return rows
+
+
+def _deposit_words(page: Page, condition: str) -> str:
+    """What a pressure drop in service leaves out, where a deposit does not narrow the flow."""
+    fouled = any(row.kind == "fouling" for row in page.base.terms[condition])
+    narrows = any(term.deposit is not None and term.deposit.narrows for term in page.calculation.resistances)
+    if condition != "service" or not fouled:
+        return ""
+    if narrows:
+        return "; the deposit narrows the flow, its roughness is not counted"
+    return "; thickness and roughness of a deposit are not counted"
 
 
 def _fouling_words(page: Page, condition: str) -> str:
@@ -158,6 +169,8 @@ def criterion_row(item: CriterionResult, page: Page) -> tuple[str, ...]:
     point = item.kind.scale == "point"
     value, limit = apart(item.value, item.limit, unit, point, PLAIN_DIGITS)
     verdict = "criterion met" if item.met else "criterion not met"
+    if not item.case:
+        verdict += certainty_words(page.solved.uncertainty, item)
     shown = unit_text(unit)
     return (
         item.id,
@@ -176,7 +189,9 @@ def _margin(item: CriterionResult, page: Page) -> str:
     if item.kind.scale == "point":
         return with_unit(number(item.margin, CONCLUSION_DIGITS), unit_text(item.kind.unit))
     margin = in_report_unit(item.margin, item.kind, page.calculation.report, CONCLUSION_DIGITS)
-    relative = f"; {percent(item.margin / abs(item.limit))} of the limit" if item.limit else ""
+    relative = ""
+    if item.limit and item.kind.unit != "1":
+        relative = f"; {percent(item.margin / abs(item.limit))} of the limit"
     return margin + relative
 
 

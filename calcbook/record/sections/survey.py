@@ -21,6 +21,8 @@ from calcbook.record.survey import DIGITS
 
 PLOT_LINES = 15
 TIME = unit_factor("s")[1]
+# Offsets this many times their scatter apart are told.
+OFFSETS_APART = 3.0
 ALLOWANCES = ("allowance_proposed", "allowance_fitted", "allowance_lower", "allowance_upper")
 
 
@@ -125,7 +127,21 @@ def _cycles(outcome: SurveyOutcome, page: Page) -> list[Block]:
         )
         for one in outcome.cycles
     )
-    return [Paragraph(words), Table(columns, rows)]
+    return [Paragraph(words), Table(columns, rows), *_offsets(outcome)]
+
+
+def _offsets(outcome: SurveyOutcome) -> list[Block]:
+    """A caution where the cleanings do not start from one zero."""
+    apart = outcome.offsets_differ_by
+    if not apart > OFFSETS_APART * outcome.offsets_scatter:
+        return []
+    return [
+        Paragraph(
+            f"Caution: the offsets lie {number(apart, DIGITS)} m²·K/W apart, more than {OFFSETS_APART:g} times their"
+            " scatter, and what is wrong in all rows alike cannot set them apart: a cleaning left a deposit behind, or"
+            " a sensor stepped. The proposal counts from the zero of each run and does not contain it."
+        )
+    ]
 
 
 # -- plot --------------------------------------------------------------------------------------------
@@ -252,4 +268,17 @@ def _proposal(outcome: SurveyOutcome, page: Page) -> list[Block]:
         f" is that of the readings. It counts from the anchored zero, on {page.basis}. Other calculations take"
         " these results by name."
     )
-    return [Table(("Result", "Meaning", "Value, m²·K/W"), rows), Paragraph(words)]
+    reach = (
+        f"The proposal stands {_days(outcome.after)} after a cleaning; rows reach {_days(outcome.period)}."
+        f" {'Beyond the rows it is the model alone.' if outcome.after > outcome.period else ''}"
+    ).rstrip()
+    runs = counted(sum(cycle.zero_rows > 0 for cycle in outcome.cycles), "run", "runs")
+    spread = (
+        f"It rests on {runs} of this unit: how runs differ from each other is not in the percentile, nor is what a"
+        " cleaning leaves behind."
+    )
+    return [
+        Table(("Result", "Meaning", "Value, m²·K/W"), rows),
+        Paragraph(words),
+        Bullets((reach, spread)),
+    ]

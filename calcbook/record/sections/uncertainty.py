@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 
+from calcbook.chain.outcome import CriterionResult
 from calcbook.chain.uncertainty_outcome import Budget, BudgetRow, SampledResult, Sampling, Uncertainty
 from calcbook.formulas.names import written_name
 from calcbook.quantities import QuantityKind, in_unit
@@ -47,6 +48,26 @@ def how_sure(page: Page) -> list[Block]:
             f"Probability that it holds in {_case(found)}, from the uncertainties of section 11: {words}."
         )
     ]
+
+
+def certainty_words(found: Uncertainty | None, item: CriterionResult) -> str:
+    """What the uncertainty says of a verdict at the stated values; empty where nothing is known of it.
+
+    The probability is that of the samples; without samples, whether the limit lies within the expanded
+    uncertainty of the result.
+    """
+    if found is None or found.case:
+        return ""
+    chances = found.sampling.chances if found.sampling is not None else ()
+    for chance in chances:
+        if chance.id == item.id:
+            answered = found.sampling.trials - found.sampling.unanswered if found.sampling is not None else 0
+            return f" at the stated values; holds with {_chance(chance.probability, answered)}"
+    result = item.that.split(">")[0].split("<")[0].strip()
+    for budget in found.budgets:
+        if budget.result == result and abs(item.margin) < budget.expanded:
+            return " at the stated values; the limit lies within the expanded uncertainty"
+    return ""
 
 
 # --- what it is made of -----------------------------------------------------------------------------

@@ -1,0 +1,69 @@
+"""What a record says beside a verdict: how sure it is, what a proposal rests on, what a figure leaves out."""
+
+from __future__ import annotations
+
+from functools import cache
+from pathlib import Path
+
+import pytest
+
+from calcbook.interface import record_text, solve_file
+
+CALCS = Path(__file__).resolve().parents[2] / "calcs"
+
+
+@cache
+def lines(name: str) -> tuple[str, ...]:
+    return tuple(record_text(solve_file(CALCS / f"{name}.yaml")).splitlines())
+
+
+def line_with(name: str, start: str) -> str:
+    return next(line for line in lines(name) if line.startswith(start))
+
+
+def test_a_criterion_of_samples_says_with_which_probability_it_holds() -> None:
+    sampled = next(line for line in lines("hc-985") if line.startswith("Probability that it holds"))
+    probability = sampled.rpartition(": ")[2].rstrip(".")
+    assert f"criterion met at the stated values; holds with {probability} |" in line_with(
+        "hc-985", "| criterion 1"
+    )
+
+
+def test_a_criterion_inside_its_uncertainty_is_no_plain_verdict() -> None:
+    answer = solve_file(CALCS / "wc-105.yaml")
+    budget = next(one for one in answer.uncertainty.budgets if one.result == "area_margin")
+    first = answer.base.criteria[0]
+    assert first.met and abs(first.margin) < budget.expanded
+    assert "the limit lies within the expanded uncertainty" in line_with("wc-105", "| criterion 1")
+    assert line_with("wc-105", "| criterion 2").split(" | ")[-2] == "criterion met"
+
+
+def test_a_proposal_says_what_it_does_not_hold() -> None:
+    found = [
+        line for line in lines("wc-111") if line.startswith(("Caution: the offsets", "- The proposal stands"))
+    ]
+    assert len(found) == 2
+    assert "Beyond the rows it is the model alone." in found[1]
+
+
+@pytest.mark.parametrize(
+    ("name", "words"),
+    [
+        ("wc-105", "thickness and roughness of a deposit are not counted"),
+        ("hr-821", "the deposit narrows the flow, its roughness is not counted"),
+    ],
+)
+def test_a_pressure_drop_in_service_says_what_of_the_deposit_it_holds(name: str, words: str) -> None:
+    rows = [line for line in lines(name) if line.startswith("| Pressure drop of ") and "in service" in line]
+    assert rows and all(words in row for row in rows)
+
+
+def test_only_a_surface_that_stands_free_can_burn() -> None:
+    """A bank of tubes in a duct of warm air is no surface that anybody touches; a pipe in still air is."""
+    assert not any("burn hazard" in line for line in lines("ha-992"))
+
+
+def test_what_its_own_tolerance_can_flip_stands_first() -> None:
+    flips = solve_file(CALCS / "wc-105.yaml").flips.of_kind("criterion")
+    reached = [flip.is_within_tolerance for flip in flips]
+    assert reached == sorted(reached, reverse=True) and reached[0]
