@@ -41,7 +41,7 @@ _BASE_NAMES = ("[length]", "[mass]", "[time]", "[temperature]", "[amount]")
 LONGEST_TEXT = 120
 LONGEST_UNIT = 60
 MOST_FACTORS = 8
-LARGEST_POWER = 4
+LARGEST_POWER = 6
 
 
 def _dimension(*exponents: int) -> Dimension:

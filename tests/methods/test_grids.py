@@ -590,6 +590,24 @@ GRIDS = [*FRICTION, *TUBES, *EXTERNAL, *BANKS, *PHASES, *DROPS]
 
 # Cards with a check point from a library that does not carry the whole law: where its parts are held.
 PARTS = {
+    "test_rating_fouling_methods": (
+        "bowman-1940-f-factor",
+        "crossflow-f-factor-both-mixed",
+        "crossflow-f-factor-both-unmixed",
+        "crossflow-f-factor-one-mixed",
+        "deposit-dp-ratio",
+        "deposit-thickness-flat",
+        "effectiveness-counterflow",
+        "effectiveness-crossflow-both-mixed",
+        "effectiveness-crossflow-both-unmixed",
+        "effectiveness-crossflow-cmax-mixed",
+        "effectiveness-crossflow-cmin-mixed",
+        "effectiveness-isothermal",
+        "effectiveness-parallel-flow",
+        "effectiveness-shell-and-tube",
+        "fouling-from-plant-data",
+        "lmtd",
+    ),
     "test_pressure_drop, of the chain": ("friction-rectangle", "kern-1950-friction", "kern-1950-shell-dp"),
     "test_bank_shell_methods": (
         "bell-delaware",

@@ -30,6 +30,9 @@ def one(old: str, new: str) -> Change:
 GIVEN = re.compile(r"^  ([A-Za-z]\w*): *\{value: ([0-9.e-]+)( [^,]+)?,", re.MULTILINE)
 
 
+NEXT_SECTION = re.compile(r"^\S", re.MULTILINE)
+
+
 def givens_of_examples() -> list[tuple[str, str, str]]:
     """Every given of every example, with another value that is near the first."""
     found = []
@@ -38,7 +41,8 @@ def givens_of_examples() -> list[tuple[str, str, str]]:
         # A given that is taken from another calculation needs that one beside it: links have tests of their own.
         if "\ngivens:" not in text or "from: {calculation:" in text:
             continue
-        for symbol, number, unit in GIVEN.findall(text.partition("\ngivens:")[2]):
+        givens = text.partition("\ngivens:")[2]
+        for symbol, number, unit in GIVEN.findall(givens[: NEXT_SECTION.search(givens).start()]):
             value = float(number)
             moved = (
                 str(int(value) + 1)
@@ -66,6 +70,7 @@ def dependents(chain: Chain, symbol: str) -> set[str]:
     found = {f"given/{symbol}"}
     while True:
         more = {step.id for step in steps if set(step.inputs.values()) & found}
+        more |= {item.id for item in chain.open_figures if item.found in found}
         for element in chain.elements:
             if isinstance(element, Group) and any(
                 candidate.coefficient in found

@@ -81,7 +81,7 @@ def test_the_controlling_term_flips_at_half_of_the_resistance(tmp_path: Path) ->
     # The outer film has 2e-3 of 2.825e-3: it stops controlling when the others add up to 2e-3.
     flip = one(found, CONTROLLING, "R_f")
     assert flip.at == pytest.approx(2e-4 + 2e-3 - 8.25e-4, rel=2e-9)
-    assert (flip.was, flip.becomes) == ("outer film", "none")
+    assert (flip.was, flip.becomes) == ("outer film", "no controlling term")
     assert one(found, CONTROLLING, "h_2").at == pytest.approx(1.0 / 8.25e-4, rel=2e-9)
 
 
@@ -244,7 +244,7 @@ def verdicts(chain: Chain, case: CaseOutcome, flip: Flip) -> list[str]:
             check.state for check in case.checks if check.id == flip.id and check.condition == flip.condition
         ]
     if flip.kind == CONTROLLING:
-        return [case.controlling or "none"]
+        return [case.controlling or "no controlling term"]
     solution = case.solutions[flip.condition]
     films = [branch for group in (chain.inner, chain.outer) for branch in group.branches]
     found = [chosen(branch, solution).method.id for branch in films if branch.name == flip.id]

@@ -56,7 +56,7 @@ def test_verdicts_of_samples_are_those_of_the_record(solved: Solved) -> None:
         check_limits(samples, case)
         for item in case.criteria:
             assert word(samples, CRITERION, item.id, "") == ("met" if item.met else "not met")
-        assert word(samples, CONTROLLING, CONTROLLING, SERVICE) == (case.controlling or "none")
+        assert word(samples, CONTROLLING, CONTROLLING, SERVICE) == (case.controlling or "no controlling term")
         for group in (solved.chain.inner, solved.chain.outer):
             for branch in group.branches:
                 for condition in CONDITIONS:
