@@ -6,13 +6,14 @@ import csv
 import hashlib
 import itertools
 import unicodedata
-from collections.abc import Iterable, Iterator, Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from pathlib import Path
 
+from calcbook.calcfile.sidefile import read_lines
 from calcbook.faults import Collector, Place, nearest_names, shown
 
-MAXIMUM_BYTES = 300_000_000
+MEGABYTES = 300
 # Rows taken apart together: a long history never stands in memory cell by cell.
 PIECE = 20_000
 
@@ -44,7 +45,7 @@ def read_history(
     Codes: file-not-found, file-too-large, file-not-utf8, file-not-text, file-empty, column-unknown, key-twice.
     Cells are not judged here: a row that cannot be read is rejected by its rule, and counted.
     """
-    lines = _lines(path, place, collector)
+    lines = read_lines(path, "the history", MEGABYTES, place, collector)
     if lines is None:
         return None
     rows = (row for row in csv.reader(lines, strict=True) if any(cell.strip() for cell in row))
@@ -66,35 +67,6 @@ def read_history(
             expected="cells parted by commas, quotes closed",
         )
         return None
-
-
-def _lines(path: Path, place: Place, collector: Collector) -> Iterable[str] | None:
-    try:
-        with path.open("rb") as stream:
-            data = stream.read(MAXIMUM_BYTES + 1)
-    except OSError:
-        beside = sorted(item.name for item in path.parent.glob("*.csv"))
-        collector.add(
-            "file-not-found",
-            place,
-            "the history cannot be read",
-            found=path.name,
-            expected="a CSV file beside the calculation file",
-            nearest=nearest_names(path.name, beside),
-        )
-        return None
-    if len(data) > MAXIMUM_BYTES:
-        collector.add("file-too-large", place, "the history is too large", expected="at most 300 MB")
-        return None
-    try:
-        text = data.decode("utf-8-sig")
-    except UnicodeDecodeError:
-        collector.add("file-not-utf8", place, "the history is not UTF-8 text", expected="UTF-8 text")
-        return None
-    if "\x00" in text:
-        collector.add("file-not-text", place, "the history holds control characters", expected="plain text")
-        return None
-    return text.replace("\r\n", "\n").replace("\r", "\n").split("\n")
 
 
 def _heads_hold(heads: list[str], wanted: Mapping[str, Place], name: str, collector: Collector) -> bool:

@@ -2,15 +2,15 @@
 
 from __future__ import annotations
 
-import re
 from pathlib import Path
 
 from calcbook.calcfile.calculation import Value
+from calcbook.calcfile.sidefile import read_lines
 from calcbook.faults import Collector, Place, nearest_names, shown
 from calcbook.quantities import QuantityFault, read_any
 
 COLUMNS = ("T", "density", "viscosity", "conductivity", "heat capacity")
-MAXIMUM_BYTES = 2_000_000
+MEGABYTES = 2
 
 
 def read_table_file(path: Path, place: Place, collector: Collector) -> dict[str, tuple[Value, ...]] | None:
@@ -20,40 +20,9 @@ def read_table_file(path: Path, place: Place, collector: Collector) -> dict[str,
     those of quantities.
     """
     before = len(tuple(collector))
-    lines = _lines(path, place, collector)
+    lines = read_lines(path, "the table file", MEGABYTES, place, collector)
     columns = _columns(lines, path.name, place, collector) if lines is not None else {}
     return columns if len(tuple(collector)) == before else None
-
-
-def _lines(path: Path, place: Place, collector: Collector) -> list[str] | None:
-    try:
-        with path.open("rb") as stream:
-            data = stream.read(MAXIMUM_BYTES + 1)
-    except OSError:
-        beside = sorted(item.name for item in path.parent.glob("*.csv"))
-        collector.add(
-            "file-not-found",
-            place,
-            "the table file cannot be read",
-            found=path.name,
-            expected="a CSV file beside the calculation file",
-            nearest=nearest_names(path.name, beside),
-        )
-        return None
-    if len(data) > MAXIMUM_BYTES:
-        collector.add("file-too-large", place, "the table file is too large", expected="at most 2 MB")
-        return None
-    try:
-        text = data.decode("utf-8-sig")
-    except UnicodeDecodeError:
-        collector.add("file-not-utf8", place, "the table file is not UTF-8 text", expected="UTF-8 text")
-        return None
-    if re.search("[\x00-\x08\x0b-\x0c\x0e-\x1f]", text):
-        collector.add(
-            "file-not-text", place, "the table file holds control characters", expected="plain text"
-        )
-        return None
-    return re.split("\r\n|\r|\n", text)
 
 
 def _columns(lines: list[str], name: str, place: Place, collector: Collector) -> dict[str, tuple[Value, ...]]:
