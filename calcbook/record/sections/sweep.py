@@ -52,7 +52,7 @@ def _counted_words(found: Sweep) -> str:
     outside = sum(bool(names) for names in found.outside)
     return (
         f"{counted(missing, 'sample has', 'samples have')} no answer;"
-        f" {counted(outside, 'sample lies', 'samples lie')} outside the range of a method or material."
+        f" {counted(outside, 'sample lies', 'samples lie')} outside a range limit."
     )
 
 
