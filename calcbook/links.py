@@ -8,6 +8,7 @@ source as it stands now, solved in turn, and is not pinned. May import: ``calcfi
 from __future__ import annotations
 
 import json
+import math
 import re
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
@@ -106,7 +107,16 @@ class Links:
                 ", ".join(results),
                 nearest_names(text.result, results),
             )
-        return results[text.result]
+        value, unit = results[text.result]
+        if not math.isfinite(value):
+            raise _fault(
+                "link-result-unknown",
+                text,
+                f"the result `{text.result}` of {text.calculation} is not known",
+                text.result,
+                "a result with a figure",
+            )
+        return value, unit
 
     def _superseding(self, number: str, revision: str) -> str:
         """The issued revision that supersedes one, if there is any."""

@@ -22,7 +22,7 @@ def read_lines(path: Path, what: str, megabytes: int, place: Place, collector: C
         with path.open("rb") as stream:
             data = stream.read(largest + 1)
     except OSError:
-        beside = sorted(item.name for item in path.parent.glob("*.csv"))
+        beside = sorted(item.name for item in path.parent.glob("*.csv") if item.is_file())
         collector.add(
             "file-not-found",
             place,

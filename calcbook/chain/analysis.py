@@ -77,6 +77,8 @@ from calcbook.quantities import QuantityFault, QuantityKind, as_kind
 
 Array = np.ndarray
 CONTROLLING_SHARE = 0.5
+# Results that the rooms above make of a solved calculation: other calculations take them, no criterion can.
+LATER, LATER_STARTS = ("time_until_duty_lost", "cleaning_interval"), ("allowance_", "fitted ")
 PLACES_SPREAD = 0.2
 # Slopes below this part of U are the rounding of sums that cancel.
 NOISE = 1e-13
@@ -176,7 +178,8 @@ class _Analysis:
         for check in checks:
             if check.level == "stop" and check.state == "outside":
                 self._report_stop(check)
-        criteria = self._criteria(name, results, inputs, solutions)
+        # A number that a limit stops is not there to be judged.
+        criteria = () if self.collector else self._criteria(name, results, inputs, solutions)
         terms = {condition: self._terms(solution) for condition, solution in solutions.items()}
         controlling, share = _controlling(terms[SERVICE])
         return CaseOutcome(
@@ -686,10 +689,13 @@ class _Analysis:
             result = results.get(criterion.result)
             if result is None:
                 if not case:
+                    later = criterion.result in LATER or criterion.result.startswith(LATER_STARTS)
                     self.collector.add(
                         "result-unknown",
                         criterion.place,
-                        f"there is no result `{shown(criterion.result)}`",
+                        f"`{shown(criterion.result)}` is found after the criteria are judged"
+                        if later
+                        else f"there is no result `{shown(criterion.result)}`",
                         found=shown(criterion.result),
                         expected=", ".join(results),
                         nearest=nearest_names(criterion.result, results),

@@ -76,15 +76,45 @@ def stream_findings(
             _report_no_saturation(state, values, collector, case)
             continue
         items += _glide_items(chain, state, temperature, case)
-        for finding in fluid.check_state(temperature, state.phase or None):
-            where = f"case {case}: " if case else ""
-            if finding.level == "fault":
-                collector.add(finding.code, state.place, f"{where}stream {state.name}: {finding.message}")
-            elif finding.level == "open item":
-                name = f"stream {state.name}/{finding.code}" + (f"/{case}" if case else "")
-                items.append(OpenItem(name, "state", f"{where}Stream {state.name}: {finding.message}."))
+        items += _state_items(state, fluid, temperature, state.phase, "", case, collector)
+        # A stream keeps the phase of its mean from end to end: one that changes it on the way is another duty.
+        phase = state.phase or fluid.phase_at(temperature)
+        for place, bound in _ends_of(chain, state.name):
+            items += _state_items(state, fluid, float(values[bound]), phase, place, case, collector)
     _check_gaps(chain, values, collector, case)
     return tuple(items)
+
+
+def _ends_of(chain: Chain, stream: str) -> list[tuple[str, str]]:
+    """The ends of a stream of the duty: where, and the id of the temperature there."""
+    duty = chain.calculation.duty
+    return [
+        (f" at its {end}", chain.results[f"T {name} {end}"])
+        for name, side in (duty.sides.items() if duty is not None else ())
+        if side.stream == stream and f"T {name} mean" in chain.results
+        for end in ("inlet", "outlet")
+    ]
+
+
+def _state_items(
+    state: StreamState,
+    fluid: FluidAtPressure,
+    temperature: float,
+    phase: str,
+    place: str,
+    case: str,
+    collector: Collector,
+) -> list[OpenItem]:
+    """What a fluid says of one temperature of its stream: faults to the collector, the rest as open items."""
+    items = []
+    where = f"case {case}: " if case else ""
+    for finding in fluid.check_state(temperature, phase or None):
+        if finding.level == "fault":
+            collector.add(finding.code, state.place, f"{where}stream {state.name}{place}: {finding.message}")
+        elif finding.level == "open item":
+            name = f"stream {state.name}{place}/{finding.code}" + (f"/{case}" if case else "")
+            items.append(OpenItem(name, "state", f"{where}Stream {state.name}{place}: {finding.message}."))
+    return items
 
 
 def _check_gaps(chain: Chain, values: dict[str, Any], collector: Collector, case: str) -> None:

@@ -37,6 +37,8 @@ LOSS = {
 }
 # The mean of a cycle: what one cleaning takes and the sum S of the losses of a run t, over the run and the cleaning.
 MEAN = {True: parse_expression("(C_c + S)/(t + t_c)"), False: parse_expression("(Q_0*t_c + S)/(t + t_c)")}
+# Rounding of a closed circuit, relative: some hundred times that of a figure.
+ROUNDING = 1e-13
 # Points at which the loss and the mean are compared before the place is found between two of them.
 POINTS_OF_SEARCH = 401
 # How far from the least mean the flat range reaches.
@@ -262,7 +264,13 @@ class _Cleaning:
             *(stated.number(item.needs["t_ind"]) for item in course.chain.growing if "t_ind" in item.needs),
         ]
         inside = {time for time in bends if 0.0 < time < course.until}
-        self.summed = Summed(self._loss_at, np.array([0.0, *sorted(inside), course.until]))
+        self.summed = Summed(
+            self._loss_at, np.array([0.0, *sorted(inside), course.until]), ROUNDING * self._whole_heat()
+        )
+
+    def _whole_heat(self) -> float:
+        """The loss of all the heat: the loss is a difference, and is known as well as what it is taken from."""
+        return abs(float(self.loss(np.asarray(0.0))))
 
     def loss(self, heat: Array) -> Array:
         return evaluate(self.loss_relation, {**self.figures, "Q": heat})

@@ -26,10 +26,11 @@ class Summed:
     """A curve in pieces of polynomials, with its integral from the first edge to any place.
 
     ``edges`` are its ends and the places where it bends, as far as they are known. All pieces that are still to be
-    cut are evaluated in one call. What the curve does not know (NaN) is not known here either.
+    cut are evaluated in one call. What the curve does not know (NaN) is not known here either; ``rounding`` is the
+    size of its own rounding, below which cutting finds nothing.
     """
 
-    def __init__(self, curve: Curve, edges: Array):
+    def __init__(self, curve: Curve, edges: Array, rounding: float):
         settled: list[tuple[Array, Array, Array]] = []
         lows, highs = np.asarray(edges[:-1], dtype=float), np.asarray(edges[1:], dtype=float)
         values = _values(curve, lows, highs)
@@ -47,7 +48,7 @@ class Summed:
                 np.abs(legendre.legval(right, series) - values[count:]).max(axis=1),
             )
             # What is not known stays so however it is cut.
-            agreed = ~(off > AGREEMENT * largest) | (cut == MAXIMUM_CUTS - 1)
+            agreed = ~(off > max(AGREEMENT * largest, rounding)) | (cut == MAXIMUM_CUTS - 1)
             done = np.concatenate([agreed, agreed])
             settled.append((lows[done], highs[done], values[done]))
             lows, highs, values = lows[~done], highs[~done], values[~done]

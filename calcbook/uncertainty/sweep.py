@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from calcbook.calcfile.calculation import Swept
-from calcbook.chain.analysis import ResultFigures
+from calcbook.chain.analysis import ResultFigures, result_figures
 from calcbook.chain.flips_outcome import LIMIT
 from calcbook.chain.outcome import Result, Solved
 from calcbook.chain.samples import BROKEN, Samples, evaluate_samples
@@ -73,16 +73,21 @@ def sweep_of(solved: Solved, axes: tuple[Axis, ...], collector: Collector) -> Sw
 def _names(solved: Solved, collector: Collector) -> list[str]:
     """The results asked for, else U and those that the acceptance names."""
     text = solved.chain.calculation.sweep
-    known = solved.base.results
+    # What is found from the solved calculation (an allowance, an interval) is not there sample by sample.
+    swept = result_figures(solved.chain, solved.base.solutions)
+    known = [name for name in solved.base.results if name in swept]
     if text is None or not text.of:
         named = [criterion.result for criterion in solved.chain.calculation.acceptance]
         return [name for name in dict.fromkeys((*ALWAYS, *named)) if name in known]
     for name, place in text.of:
         if name not in known:
+            there = name in solved.base.results
             collector.add(
                 "result-unknown",
                 place,
-                f"there is no result `{shown(name)}`",
+                f"`{shown(name)}` is found once for the calculation and cannot be swept"
+                if there
+                else f"there is no result `{shown(name)}`",
                 found=shown(name),
                 expected=", ".join(known),
                 nearest=nearest_names(name, known),
