@@ -56,6 +56,15 @@ def read_history(
                 "file-empty", place, "the history holds nothing", expected="a row of heads, then rows"
             )
             return None
+        if len(heads) == 1 and (";" in heads[0] or "\t" in heads[0]):
+            collector.add(
+                "file-not-text",
+                place,
+                "the cells of the history are not parted by commas",
+                found=shown(heads[0]),
+                expected="cells parted by commas, a decimal point in figures",
+            )
+            return None
         if not _heads_hold(heads, wanted, path.name, collector):
             return None
         return _taken(rows, heads, wanted)

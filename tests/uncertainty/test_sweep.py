@@ -108,7 +108,7 @@ def test_a_sample_outside_a_range_is_named_and_counted(tmp_path: Path) -> None:
     assert [turbulent in names for names in found.outside] == [value < 1e4 for value in reynolds]
     count = sum(bool(names) for names in found.outside)
     assert 0 < count < 4
-    assert f"{count} sample{'s lie' if count > 1 else ' lies'} outside the range" in record_text(solved)
+    assert f"{count} sample{'s lie' if count > 1 else ' lies'} outside a range limit" in record_text(solved)
 
 
 def test_the_record_shows_table_and_plot(tmp_path: Path) -> None:
