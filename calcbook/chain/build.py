@@ -408,6 +408,13 @@ class _Builder:
                     f"`{term.name}` does not lie between two walls",
                     expected=f"a {term.kind} between two walls",
                 )
+            elif term.kind == "gap" and terms[index + 1].kind == "gap":
+                self.collector.add(
+                    "term-order",
+                    terms[index + 1].place,
+                    f"no wall lies between `{term.name}` and `{terms[index + 1].name}`",
+                    expected="a wall between two gaps",
+                )
         return len(list(self.collector)) == before
 
     # -- elements -----------------------------------------------------------------------------------

@@ -195,6 +195,17 @@ class DutyLayout:
         assert state is not None
         mean = self.results.get(f"T {name} mean", "")
         if mean and state.temperature != mean:
+            ends = {
+                "T_i": self.results[f"T {name} inlet"],
+                "T_o": self.results[f"T {name} outlet"],
+            }
+            self._check(
+                f"ends / {name} mean between the ends",
+                "min(T_i, T_o) <= T_b <= max(T_i, T_o)",
+                "range",
+                "the stated temperature of a stream lies between its ends",
+                {"T_b": state.temperature, **ends},
+            )
             self._check(
                 f"ends / {name} mean",
                 f"abs(T_b - T_{name[0]}m) <= abs(T_i - T_o)/4",
@@ -203,8 +214,7 @@ class DutyLayout:
                 {
                     "T_b": state.temperature,
                     f"T_{name[0]}m": mean,
-                    "T_i": self.results[f"T {name} inlet"],
-                    "T_o": self.results[f"T {name} outlet"],
+                    **ends,
                 },
             )
 

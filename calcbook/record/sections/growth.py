@@ -233,8 +233,9 @@ def _reference_words(interval: Interval) -> str:
 def _remarks(page: Page, found: OverTime, interval: Interval) -> tuple[str, ...]:
     """The interval itself, its flat range, what comes before it, and the closed form beside it."""
     low, high = interval.flat
-    ends = [_time(found, time) if math.isfinite(time) else "" for time in (low, high)]
-    span = f"between {ends[0]} and {ends[1]}" if ends[1] else f"from {ends[0]} to the end of the table"
+    start = _time(found, low) if math.isfinite(low) else "the cleaning itself"
+    end = _time(found, high) if math.isfinite(high) else "the end of the table"
+    span = f"from {start} to {end}"
     lines = [
         f"Cleaning interval: {_time(found, interval.interval)} in service.",
         f"The mean stays within {percent(interval.flat_part, 0)} of the least {span}.",
