@@ -459,6 +459,7 @@ TERM_KEYS = {
 # Pairs of which only one can stand on a term.
 TERM_CONFLICTS = (
     ("coefficient", "resistance"),
+    ("stream", "temperature"),
     ("coefficient", "situation"),
     ("coefficient", "method"),
     ("coefficient", "method factor"),

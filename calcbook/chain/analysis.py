@@ -246,7 +246,7 @@ class _Analysis:
         self.collector.add(
             "limit-stops",
             place,
-            f"{check.id}: no number is given outside this limit",
+            f"{f'case {check.case}: ' if check.case else ''}{check.id}: no number is given outside this limit",
             found=check.figure,
             expected=f"{check.limit} ({check.because})",
         )

@@ -120,6 +120,10 @@ class _Builder:
             self._mark_unused()
             return None
         circuit, results = Circuit(scope, elements, shape, basis, self.streams).lay_out()
+        if self.specified is not None:
+            before = frozenset(scope.steps)
+            self.checks.append(self.specified.found(results["U"]))
+            circuit = (*circuit, *(step for name, step in scope.steps.items() if name not in before))
         if has_duty:
             circuit, results = self._rated(elements, shape, basis, circuit, results)
         else:

@@ -29,10 +29,11 @@ def completed(
     inputs: Mapping[str, Array],
     forced: Mapping[str, Candidate] | None = None,
     choices: Mapping[str, Array] | None = None,
+    thorough: bool = True,
 ) -> dict[str, Array]:
     """The inputs with every open figure, each in the condition that it belongs to; NaN where none agrees.
 
-    ``forced`` and ``choices`` are those of ``solve``.
+    ``forced``, ``choices`` and ``thorough`` are those of ``solve``.
     """
     missing = [item for item in chain.open_figures if item.id not in inputs]
     if not missing:
@@ -44,7 +45,7 @@ def completed(
         else np.broadcast_to(value, shape).reshape(-1)
         for name, value in inputs.items()
     }
-    passes = _Passes(chain, flat, int(np.prod(shape, dtype=int)), forced or {}, choices or {})
+    passes = _Passes(chain, flat, int(np.prod(shape, dtype=int)), forced or {}, choices or {}, thorough)
     found = passes.found()
     return {**inputs, **{name: value.reshape(shape) for name, value in found.items()}}
 
@@ -59,12 +60,14 @@ class _Passes:
         size: int,
         forced: Mapping[str, Candidate],
         choices: Mapping[str, Array],
+        thorough: bool,
     ):
         self.chain = chain
         self.inputs = inputs
         self.size = size
         self.forced = forced
         self.choices = choices
+        self.thorough = thorough
         self.open = tuple(item for item in chain.open_figures if item.id not in inputs)
         self.static = frozenset(step.id for step in chain.steps)
 
@@ -110,7 +113,9 @@ class _Passes:
                     run(self.chain.steps, values)
             else:
                 choices = {name: choice[active] for name, choice in self.choices.items()}
-                values = closed(self.chain, inputs, condition, self.forced, wanted, choices=choices).values
+                values = closed(
+                    self.chain, inputs, condition, self.forced, wanted, self.thorough, choices
+                ).values
             given |= {name: values[name] for name in wanted}
         count = (len(active),)
         return np.array(
@@ -123,8 +128,10 @@ def _joined(came_out: Array, gap: Array, before: tuple[Array, Array] | None) -> 
     if before is None:
         return came_out
     last, last_gap = before
-    change = gap - last_gap
-    square = (change * change).sum(axis=0)
     with np.errstate(all="ignore"):
-        part = np.where(square > 0.0, (change * gap).sum(axis=0) / square, 0.0)
+        # Temperatures, coefficients and resistances weigh alike only by their own size.
+        size = np.abs(came_out)
+        change, off = (gap - last_gap) / size, gap / size
+        square = (change * change).sum(axis=0)
+        part = np.where(square > 0.0, (change * off).sum(axis=0) / square, 0.0)
     return came_out - part * (came_out - last)

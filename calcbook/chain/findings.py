@@ -430,7 +430,7 @@ def stream_phases(
     states, place = stream_states(state, values)
     groups: dict[tuple[float, ...], list[int]] = {}
     for number, (_, pressure, fraction) in enumerate(states):
-        groups.setdefault(tuple(np.nan_to_num([pressure, fraction], nan=UNKNOWN)), []).append(number)
+        groups.setdefault((_or_unknown(pressure), _or_unknown(fraction)), []).append(number)
     phases = [""] * len(states)
     for numbers in groups.values():
         numbers.sort(key=lambda number: states[number][0])
@@ -440,7 +440,7 @@ def stream_phases(
     found: dict[tuple[str, float, float], int] = {}
     renamed = []
     for phase, (_, pressure, fraction) in zip(phases, states, strict=True):
-        key = (phase, *np.nan_to_num([pressure, fraction], nan=UNKNOWN).tolist())
+        key = (phase, _or_unknown(pressure), _or_unknown(fraction))
         renamed.append(found.setdefault(key, len(found)))
     known = [
         (phase, *(math.nan if figure == UNKNOWN else figure for figure in figures))
@@ -463,6 +463,11 @@ def _phase(state: StreamState, temperature: float, pressure: float, fraction: fl
 def known_or_none(figure: float) -> float | None:
     """A figure, or None where there is none (NaN)."""
     return None if math.isnan(figure) else figure
+
+
+def _or_unknown(figure: float) -> float:
+    """A figure that may stand in a key: NaN is not even equal to itself."""
+    return UNKNOWN if math.isnan(figure) else figure
 
 
 def stream_states(

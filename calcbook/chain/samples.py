@@ -29,6 +29,7 @@ from calcbook.chain.checks import (
 from calcbook.chain.completing import completed
 from calcbook.chain.findings import film_steps, known_or_none, stream_phases, stream_states, wall_limits
 from calcbook.chain.flips_outcome import CONTROLLING, CRITERION, LIMIT, METHOD
+from calcbook.chain.outcome import CaseOutcome
 from calcbook.chain.pressure import drops, evaluate_pressure_drops, law_choice
 from calcbook.chain.solve import Solution, conditions_of, solve_both
 from calcbook.chain.types import (
@@ -122,6 +123,16 @@ class Samples:
         return np.stack(rows) if rows else np.empty((0, len(self.missing)))
 
 
+def phases_of(chain: Chain, cases: Sequence[CaseOutcome]) -> dict[str, tuple[str, ...]]:
+    """The phase of every stream in each solved case, where the file does not state it."""
+    found = {}
+    for state in chain.streams.values():
+        if not state.phase and state.temperature in cases[0].solutions[SERVICE].values:
+            known = [case.solutions[SERVICE].values for case in cases]
+            found[state.name] = tuple(stream_phases(state, values)[0][0][0] for values in known)
+    return found
+
+
 def evaluate_samples(
     chain: Chain,
     inputs: Mapping[str, Array],
@@ -139,7 +150,7 @@ def evaluate_samples(
     size = max(np.size(value) for value in inputs.values())
     belongs = case_of if case_of is not None else np.zeros(size, dtype=int)
     samples = Samples(np.zeros(size, dtype=int))
-    inputs = completed(chain, inputs)
+    inputs = completed(chain, inputs, thorough=False)
     with np.errstate(all="ignore"):
         values = bulk_values(chain, inputs)
         _mark_states(chain, values, samples, belongs, phases or {})

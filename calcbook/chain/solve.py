@@ -106,7 +106,7 @@ def solve(
     if chain.open_figures:
         from calcbook.chain.completing import completed
 
-        inputs = completed(chain, inputs, forced, choices)
+        inputs = completed(chain, inputs, forced, choices, thorough)
     return closed(chain, inputs, condition, forced, keep, thorough, choices)
 
 

@@ -1,7 +1,7 @@
 """Fouling of the whole unit, specified by its cleanliness or its excess surface and split over its terms.
 
-The resistance follows from the clean unit's U, which is found first: R = (1/cleanliness − 1)/U_clean, or
-excess surface over U_clean, on the basis area.
+The resistance is found so that U in service over U clean is what is specified, films and all: a deposit moves
+the surface that a fluid touches, and with it the film.
 """
 
 from __future__ import annotations
@@ -10,15 +10,17 @@ from dataclasses import dataclass
 
 from calcbook.calcfile.calculation import FoulingSpecified, Term
 from calcbook.chain.scope import Scope
-from calcbook.chain.types import CLEAN, ChainCheck, OpenFigure
+from calcbook.chain.types import CLEAN, SERVICE, ChainCheck, OpenFigure
 from calcbook.formulas import parse_expression
 from calcbook.library import vocabulary
 from calcbook.library.cards import Limit
 
 OWNER = "fouling"
-# Where the clean U is looked for from, W/(m² K); it depends on no deposit, so the first pass finds it.
-FIRST_U = 500.0
-RELATIONS = {"cleanliness": "(1/C_f - 1)/U_c", "excess surface": "S_f/U_c"}
+CLEAN_U, WHOLE, FOUND = f"{OWNER}/U clean", f"{OWNER}/R whole", f"{OWNER}/R found"
+# Where the clean U, W/(m² K), and the resistance, m² K/W, are looked for from.
+FIRST_U, FIRST_R = 500.0, 1e-4
+# What the resistance must be, from what it is and the U in service with it.
+RELATIONS = {"cleanliness": "R_f + 1/(C_f*U_c) - 1/U", "excess surface": "R_f + (1 + S_f)/U_c - 1/U"}
 SYMBOLS = {"cleanliness": "C_f", "excess surface": "S_f"}
 LIMITS = {"cleanliness": "0 < C_f <= 1", "excess surface": "S_f >= 0"}
 
@@ -31,57 +33,74 @@ class SpecifiedFouling:
     specified: FoulingSpecified
 
     def open_figures(self) -> tuple[OpenFigure, ...]:
-        """The clean U that the specification refers to."""
-        first = self.scope.constant(
-            f"{OWNER}/first U", FIRST_U, vocabulary()["overall coefficient"].dimension
+        """The clean U that the specification refers to, and the resistance that makes it true."""
+        kinds = vocabulary()
+        first_u = self.scope.constant(f"{OWNER}/first U", FIRST_U, kinds["overall coefficient"].dimension)
+        first_r = self.scope.constant(f"{OWNER}/first R", FIRST_R, kinds["area resistance"].dimension)
+        return (
+            OpenFigure(self._open(CLEAN_U, "overall coefficient"), "circuit/U", CLEAN, first_u, first_u),
+            OpenFigure(self._open(WHOLE, "area resistance"), FOUND, SERVICE, first_r, first_r),
         )
-        return (OpenFigure(self._clean, "circuit/U", CLEAN, first, first),)
 
-    @property
-    def _clean(self) -> str:
-        name = f"{OWNER}/U clean"
-        self.scope.dimensions[name] = vocabulary()["overall coefficient"].dimension
+    def _open(self, name: str, kind: str) -> str:
+        self.scope.dimensions[name] = vocabulary()[kind].dimension
         return name
+
+    def found(self, overall: str) -> ChainCheck:
+        """Lay out the step that gives the resistance from the U of the circuit; the limit that it must hold."""
+        figures = {
+            "R_f": self._open(WHOLE, "area resistance"),
+            "U_c": self._open(CLEAN_U, "overall coefficient"),
+            SYMBOLS[self.specified.kind]: self._figure(),
+            "U": overall,
+        }
+        self.scope.relation_step(
+            FOUND,
+            "R_f",
+            f"fouling of the whole unit for {self.specified.kind}",
+            OWNER,
+            parse_expression(RELATIONS[self.specified.kind]),
+            figures,
+            f"specified as {self.specified.kind}; U_c is the clean U; found in service",
+            "area resistance",
+        )
+        return self._stop(
+            "resistance", "R_f >= 0", {"R_f": WHOLE}, "the deposits that are stated leave some of it"
+        )
 
     def checks(self) -> tuple[ChainCheck, ...]:
         """The specification lies where it can: a fault of the file otherwise."""
+        figures = {SYMBOLS[self.specified.kind]: self._figure()}
+        that = LIMITS[self.specified.kind]
+        return (self._stop("specified fouling", that, figures, "a deposit adds resistance, or none"),)
+
+    def _stop(self, name: str, that: str, figures: dict[str, str], because: str) -> ChainCheck:
         limit = Limit(
-            "specified fouling",
-            parse_expression(LIMITS[self.specified.kind]),
+            name,
+            parse_expression(that),
             "stop",
-            "a deposit adds resistance, or none",
+            because,
             "common practice",
             "common practice",
             self.specified.place,
         )
-        figures = {SYMBOLS[self.specified.kind]: self._figure()}
-        return (ChainCheck(f"{OWNER} / {limit.id}", OWNER, OWNER, limit, figures),)
+        return ChainCheck(f"{OWNER} / {name}", OWNER, OWNER, limit, figures)
 
     def _figure(self) -> str:
         return self.scope.value(self.specified.value, "ratio", OWNER, self.specified.kind)
 
     def resistance(self, term: Term, basis: str, own: str) -> str:
         """The id of a term's resistance on its own area ``own``; ``basis`` is the basis area. Empty after a fault."""
-        whole = self.scope.relation_step(
-            f"{OWNER}/R whole",
-            "R_f",
-            f"fouling of the whole unit for {self.specified.kind}",
-            term.name,
-            parse_expression(RELATIONS[self.specified.kind]),
-            {SYMBOLS[self.specified.kind]: self._figure(), "U_c": self._clean},
-            f"specified as {self.specified.kind}; U_c is the clean U on the basis area",
-            "area resistance",
-        )
         self.scope.assume(
             f"{OWNER}/specified",
-            f"The fouling of the whole unit is specified as {self.specified.kind}; the allowances follow from U clean.",
+            f"The fouling of the whole unit is specified as {self.specified.kind}; its terms follow from it.",
             "fouling specified as in the file",
             "fouling terms",
         )
         share = self._share(term)
         if not share:
             return ""
-        text, inputs = "x*R_f", {"x": share, "R_f": whole}
+        text, inputs = "x*R_f", {"x": share, "R_f": self._open(WHOLE, "area resistance")}
         if basis != own:
             text, inputs = "x*R_f*A/A_b", {**inputs, "A": own, "A_b": basis}
         return self.scope.relation_step(

@@ -19,7 +19,6 @@ from decimal import ROUND_CEILING, ROUND_FLOOR, Context, Decimal
 import numpy as np
 
 from calcbook.calcfile.calculation import Given
-from calcbook.chain.findings import stream_phases
 from calcbook.chain.flips_outcome import CONTROLLING, CRITERION, LIMIT, METHOD, Flip, Flips, Searched
 from calcbook.chain.outcome import CaseOutcome, Solved
 from calcbook.chain.samples import (
@@ -29,8 +28,9 @@ from calcbook.chain.samples import (
     Samples,
     Verdicts,
     evaluate_samples,
+    phases_of,
 )
-from calcbook.chain.types import SERVICE, Chain, Input
+from calcbook.chain.types import Chain, Input
 from calcbook.quantities import in_unit, read_any, read_tolerance
 from calcbook.uncertainty.lines import COUNTED, Reach, changes_fluid_state, reach
 
@@ -194,7 +194,7 @@ class _Search:
         self.cases = cases
         self.names = tuple(case.name for case in cases)
         self.base = {name: np.array([case.inputs[name] for case in cases]) for name in self.chain.inputs}
-        self.phases = self._phases()
+        self.phases = phases_of(self.chain, cases)
         self.directions = [
             float(np.sign(case.results["heat_flow_service"].value))
             for case in cases
@@ -281,15 +281,6 @@ class _Search:
             inputs = {name: np.full(len(case_of), value) for name, value in inputs.items()}
         samples = evaluate_samples(self.chain, inputs, self.names, case_of, self.phases, self.directions)
         return self.table.takes(samples) + ahead
-
-    def _phases(self) -> dict[str, tuple[str, ...]]:
-        """The phase of every stream in each case, where the file does not state it."""
-        found = {}
-        for state in self.chain.streams.values():
-            if not state.phase and state.temperature in self.cases[0].solutions[SERVICE].values:
-                known = [case.solutions[SERVICE].values for case in self.cases]
-                found[state.name] = tuple(stream_phases(state, values)[0][0][0] for values in known)
-        return found
 
     # -- brackets -----------------------------------------------------------------------------------
 

@@ -8,7 +8,7 @@ from calcbook.calcfile.calculation import Swept
 from calcbook.chain.analysis import ResultFigures, result_figures
 from calcbook.chain.flips_outcome import LIMIT
 from calcbook.chain.outcome import Result, Solved
-from calcbook.chain.samples import BROKEN, Samples, evaluate_samples
+from calcbook.chain.samples import BROKEN, Samples, evaluate_samples, phases_of
 from calcbook.chain.sweep_outcome import Axis, Sweep, SweptResult
 from calcbook.chain.types import Chain, Input
 from calcbook.faults import Collector, Place, nearest_names, shown
@@ -61,7 +61,7 @@ def sweep_of(solved: Solved, axes: tuple[Axis, ...], collector: Collector) -> Sw
     grids = np.meshgrid(*(np.array(axis.figures) for axis in axes), indexing="ij")
     for axis, grid in zip(axes, grids, strict=True):
         inputs[axis.input.id] = np.ascontiguousarray(grid.ravel())
-    samples = evaluate_samples(solved.chain, inputs)
+    samples = evaluate_samples(solved.chain, inputs, phases=phases_of(solved.chain, (solved.base,)))
     return Sweep(
         axes,
         tuple(_result(solved, solved.base.results[name], samples) for name in names),

@@ -23,6 +23,8 @@ PLOT_LINES = 15
 TIME = unit_factor("s")[1]
 # Offsets this many times their scatter apart are told.
 OFFSETS_APART = 3.0
+# A share of rejected rows that is told apart.
+MANY_REJECTED = 0.25
 ALLOWANCES = ("allowance_proposed", "allowance_fitted", "allowance_lower", "allowance_upper")
 
 
@@ -86,7 +88,17 @@ def _rows(outcome: SurveyOutcome) -> list[Block]:
         "Each row kept goes through the chain above, clean, at its own flows and temperatures:"
         f" {outcome.row_relations}, where x is the heat loss."
     )
-    return [Paragraph(words), table, Paragraph(more), *_gaps(outcome), Paragraph(relations)]
+    many = (
+        [
+            Paragraph(
+                f"Caution: {percent(rejected / outcome.rows)} of the rows are rejected; what is left may not stand for the"
+                " unit."
+            )
+        ]
+        if rejected > MANY_REJECTED * outcome.rows
+        else []
+    )
+    return [Paragraph(words), table, *many, Paragraph(more), *_gaps(outcome), Paragraph(relations)]
 
 
 def _gaps(outcome: SurveyOutcome) -> list[Block]:
