@@ -335,3 +335,29 @@ def test_a_method_factor_has_its_own_line_in_the_ledger() -> None:
     assert clean.number("tube-side film/gnielinski-1976/h with factor") == pytest.approx(
         0.9 * clean.number("tube-side film/gnielinski-1976/h"), rel=1e-14
     )
+
+
+@pytest.mark.parametrize(
+    ("way", "value", "ratio"), [("cleanliness", "80 %", 0.8), ("excess surface", "60 %", 1 / 1.6)]
+)
+def test_a_specified_fouling_is_met_though_films_move_with_it(
+    tmp_path: Path, way: str, value: str, ratio: float
+) -> None:
+    """By definition U_service/U_clean, or 1/(1 + excess surface); the tube-side film follows its surface here."""
+    text = (
+        RATED.read_text(encoding="utf-8").replace("resistance: R_fi, ", "").replace("resistance: R_fo, ", "")
+    )
+    path = tmp_path / "rt-2.yaml"
+    path.write_text(
+        f"{text}fouling specified as:\n  {way}: {{value: {value}, source: s}}\n"
+        "  split: {tube-side deposit: {value: 40 %, source: s}, shell-side deposit: {value: 60 %, source: s}}\n",
+        encoding="utf-8",
+    )
+    answer = solve_file(path)
+    assert figure(answer, "cleanliness") == pytest.approx(ratio, rel=1e-12)
+    films = [figure(answer, f"h tube-side film {condition}") for condition in ("clean", "service")]
+    assert films[0] != pytest.approx(films[1], rel=1e-3)
+    inner, outer = (
+        figure(answer, f"R {name} service") for name in ("tube-side deposit", "shell-side deposit")
+    )
+    assert inner / outer == pytest.approx(40 / 60, rel=1e-12)
