@@ -29,7 +29,7 @@ def read(folder: Path, data: bytes, *heads: str) -> tuple[History | None, list[s
         (b't,T\n1,"2\n3,4\n', "file-not-text"),
         (b"t,U\n1,2\n", "column-unknown"),
         (b"t,T,T\n1,2,3\n", "key-twice"),
-        (b"t;T\n1;2\n", "column-unknown"),
+        (b"t;T\n1;2\n", "file-not-text"),
     ],
 )
 def test_a_file_that_is_no_history_is_refused_by_name(tmp_path: Path, data: bytes, code: str) -> None:
