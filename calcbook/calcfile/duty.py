@@ -53,16 +53,7 @@ def _count(reader: Reader, fields: Fields, name: str) -> int:
     scalar = fields.scalar(name)
     if scalar is None:
         return 1
-    if not scalar.text.isascii() or not scalar.text.isdigit() or not 1 <= int(scalar.text) <= LARGEST_COUNT:
-        reader.collector.add(
-            "count-unreadable",
-            scalar.place,
-            f"`{name}` is a whole number",
-            found=shown(scalar.text),
-            expected=f"1 to {LARGEST_COUNT}",
-        )
-        return 1
-    return int(scalar.text)
+    return reader.whole_number(scalar, name, 1, LARGEST_COUNT) or 1
 
 
 def _check(reader: Reader, duty: Duty, fields: Fields) -> None:

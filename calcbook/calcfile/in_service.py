@@ -33,16 +33,10 @@ def read_time_in_service(reader: Reader) -> TimeInService | None:
     steps = fields.scalar("steps")
     if until is None or steps is None:
         return None
-    if not (steps.text.isascii() and steps.text.isdigit() and FEWEST_STEPS <= int(steps.text) <= MOST_STEPS):
-        reader.collector.add(
-            "count-unreadable",
-            steps.place,
-            "`steps` is a whole number",
-            found=shown(steps.text),
-            expected=f"{FEWEST_STEPS} to {MOST_STEPS}",
-        )
+    count = reader.whole_number(steps, "steps", FEWEST_STEPS, MOST_STEPS)
+    if count is None:
         return None
-    return TimeInService(until, int(steps.text), node.place)
+    return TimeInService(until, count, node.place)
 
 
 def read_cleaning(reader: Reader) -> Cleaning | None:

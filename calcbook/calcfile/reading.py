@@ -338,6 +338,22 @@ class Reader:
             )
         return node.text
 
+    def whole_number(self, scalar: Scalar, name: str, least: int, most: int) -> int | None:
+        """A whole number within its bounds; None after a fault. Code: count-unreadable."""
+        text = scalar.text
+        # A text longer than its largest number is none, and need not be turned into one.
+        is_number = text.isascii() and text.isdigit() and len(text.lstrip("0")) <= len(str(most))
+        if is_number and least <= int(text) <= most:
+            return int(text)
+        self.collector.add(
+            "count-unreadable",
+            scalar.place,
+            f"`{name}` is a whole number",
+            found=shown(text),
+            expected=f"{least} to {most}",
+        )
+        return None
+
     # -- head ---------------------------------------------------------------------------------------
 
     def number(self, head: Fields) -> str:

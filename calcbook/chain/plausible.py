@@ -83,7 +83,9 @@ def _all_figures(chain: Chain, solution: Solution) -> Iterator[Figure]:
     terms = {term.name: term for term in chain.calculation.resistances}
     for layer, _ in gaps(chain):
         stated = terms[layer.name].values.get("thickness")
-        yield Figure(layer.name, "gap between two walls", _stated(solution, stated, layer.name, "thickness"))
+        yield Figure(
+            layer.name, "gap between two walls", stated_figure(solution, stated, layer.name, "thickness")
+        )
     for group in (chain.inner, chain.outer):
         for branch in group.branches:
             if branch.kind != "radiation":
@@ -116,7 +118,7 @@ def _shape(chain: Chain) -> str:
 def _tubes(chain: Chain, solution: Solution) -> float:
     """How many tubes there are; one where nothing says so."""
     for key in ("tubes", "parallel"):
-        count = _stated(solution, _dimension(chain, key), "geometry", key)
+        count = stated_figure(solution, _dimension(chain, key), "geometry", key)
         if math.isfinite(count):
             return count
     return 1.0
@@ -127,7 +129,7 @@ def _dimension(chain: Chain, key: str) -> Value | None:
     return geometry.dimensions.get(key) if geometry is not None else None
 
 
-def _stated(solution: Solution, value: Value | None, owner: str, key: str) -> float:
+def stated_figure(solution: Solution, value: Value | None, owner: str, key: str) -> float:
     """A figure of the file as the solution holds it; NaN where the file has none."""
     if value is None:
         return math.nan
@@ -146,7 +148,9 @@ def _dimensions(chain: Chain, solution: Solution) -> Iterator[Figure]:
         yield Figure("geometry", outer, solution.number(round_surfaces[1].diameter))
     if bundle:
         yield Figure(
-            "geometry", "tube length", _stated(solution, _dimension(chain, "length"), "geometry", "length")
+            "geometry",
+            "tube length",
+            stated_figure(solution, _dimension(chain, "length"), "geometry", "length"),
         )
 
 
@@ -185,14 +189,14 @@ def _walls(chain: Chain, solution: Solution) -> Iterator[_Wall]:
         kind = chain.library.material(element.material).kind if element.material else ""
         if not kind and term.name == first and _shape(chain) != "plane":
             kind = "metal"
-        thickness = _stated(solution, term.values.get("thickness"), term.name, "thickness")
+        thickness = stated_figure(solution, term.values.get("thickness"), term.name, "thickness")
         if chain.surfaces[element.surface].diameter and element.surface > 0:
             before, after = (
                 solution.number(chain.surfaces[index].diameter)
                 for index in (element.surface - 1, element.surface)
             )
             thickness = (after - before) / 2.0
-        conductivity = _stated(solution, term.values.get("conductivity"), term.name, "conductivity")
+        conductivity = stated_figure(solution, term.values.get("conductivity"), term.name, "conductivity")
         if element.material:
             conductivity = solution.number(f"{term.name}/{element.material}/k")
         thickness_band = "insulation thickness" if kind == "insulation" else "metal wall thickness"

@@ -11,7 +11,6 @@ from dataclasses import replace
 
 import numpy as np
 
-from calcbook.calcfile import Calculation
 from calcbook.chain.build import build
 from calcbook.chain.checks import evaluate_check
 from calcbook.chain.completing import completed
@@ -34,11 +33,9 @@ ROUNDS = 6
 
 def day_one(solved: Solved) -> DayOne | None:
     """The clean unit at the duty's inlets; None where a flow is missing that it takes, or nothing fouls."""
-    calculation = solved.chain.calculation
-    assert calculation.duty is not None
     if not any(row.kind == "fouling" for row in solved.base.terms[SERVICE]):
         return None
-    chain = open_chain(calculation, solved.chain)
+    chain = open_chain(solved.chain, "hot", "cold")
     if chain is None:
         return None
     inputs = chain.case_inputs("")
@@ -64,19 +61,23 @@ def day_one(solved: Solved) -> DayOne | None:
     )
 
 
-def open_chain(calculation: Calculation, before: Chain) -> Chain | None:
-    """The calculation with open outlets and the means of its ends; None where that cannot be built."""
-    duty = calculation.duty
+def open_chain(before: Chain, *sides: str) -> Chain | None:
+    """The calculation with the outlets of some sides open and the means of their ends; None where it has a fault."""
+    calculation, duty = before.calculation, before.calculation.duty
     assert duty is not None
+    opened = {name: replace(duty.sides[name], outlet=None) for name in sides}
+    open_streams = {side.stream for side in opened.values() if side.inlet is not None}
     streams = {
-        name: replace(stream, temperature=None)
-        if any(side.stream == name and side.inlet is not None for side in duty.sides.values())
-        else stream
+        name: replace(stream, temperature=None) if name in open_streams else stream
         for name, stream in calculation.streams.items()
     }
-    opened = replace(duty, hot=replace(duty.hot, outlet=None), cold=replace(duty.cold, outlet=None), parts=1)
+    changed = replace(
+        calculation,
+        duty=replace(duty, hot=opened.get("hot", duty.hot), cold=opened.get("cold", duty.cold), parts=1),
+        streams=streams,
+    )
     collector = Collector()
-    chain = build(replace(calculation, duty=opened, streams=streams), before.library, collector)
+    chain = build(changed, before.library, collector, cross_check=False)
     return chain if chain is not None and not collector and chain.open_figures else None
 
 
@@ -102,8 +103,8 @@ def _turned_down(solved: Solved) -> tuple[UnitState | None, str, list[CheckResul
         return None, "the cold stream has no mass flow that could be turned down", []
     if duty.hot.outlet is None and duty.hot.inlet is not None:
         return None, "the outlet of the hot stream is not stated", []
-    opened = _with_open_cold_outlet(solved)
-    if opened is None:
+    opened = open_chain(chain, "cold")
+    if opened is None or "duty" not in opened.results:
         return None, "the duty does not follow from the hot stream alone", []
     fixed = _stated_without_scale(solved, duty.cold.stream)
     if fixed:
@@ -136,18 +137,6 @@ def _stated_without_scale(solved: Solved, stream: str) -> str:
         if term.texts.get("stream") == stream and "coefficient" in term.values and term.scales_with is None:
             return term.name
     return ""
-
-
-def _with_open_cold_outlet(solved: Solved) -> Chain | None:
-    calculation = solved.chain.calculation
-    duty = calculation.duty
-    assert duty is not None
-    cold = calculation.streams[duty.cold.stream]
-    streams = {**calculation.streams, duty.cold.stream: replace(cold, temperature=None)}
-    opened = replace(duty, cold=replace(duty.cold, outlet=None), parts=1)
-    collector = Collector()
-    chain = build(replace(calculation, duty=opened, streams=streams), solved.chain.library, collector)
-    return chain if chain is not None and not collector and "duty" in chain.results else None
 
 
 def _margins(chain: Chain, inputs: Mapping[str, Array], flow: str, flows: Array) -> Array:

@@ -5,10 +5,9 @@ The area that a resistance asks for is Q/(F·ΔT_lm)·R, so that the parts of te
 
 from __future__ import annotations
 
-from calcbook.calcfile.calculation import Value
 from calcbook.chain.outcome import Solved
+from calcbook.chain.plausible import stated_figure
 from calcbook.chain.rating_outcome import LedgerRow
-from calcbook.chain.solve import Solution
 from calcbook.chain.types import CLEAN, SERVICE
 
 # Below this part of the installed area a difference of two solved resistances is rounding.
@@ -62,7 +61,7 @@ def _factor_rows(solved: Solved, per_resistance: float) -> list[LedgerRow]:
         row = next((row for row in solved.base.terms[CLEAN] if row.name == term.name), None)
         if value is None or row is None:
             continue
-        factor = _number(clean, value, f"{term.name}/method factor")
+        factor = stated_figure(clean, value, term.name, "method factor")
         area = per_resistance * row.resistance * (1.0 - factor)
         rows.append(LedgerRow(f"method factor of {term.name}", area, f"F_m = {factor:g} on its method", True))
     return rows
@@ -74,15 +73,9 @@ def _plugged_area(solved: Solved, installed: float) -> float:
     plugged, tubes = (geometry.dimensions.get(key) if geometry else None for key in ("plugged", "tubes"))
     if plugged is None or tubes is None:
         return 0.0
-    closed, every = (_figure(solved, value, key) for value, key in ((plugged, "plugged"), (tubes, "tubes")))
+    service = solved.base.solutions[SERVICE]
+    closed, every = (
+        stated_figure(service, value, "geometry", key)
+        for value, key in ((plugged, "plugged"), (tubes, "tubes"))
+    )
     return installed * closed / (every - closed)
-
-
-def _figure(solved: Solved, value: Value, key: str) -> float:
-    return _number(solved.base.solutions[SERVICE], value, f"geometry/{key}")
-
-
-def _number(solution: Solution, value: Value, literal: str) -> float:
-    """A figure of the file in a solution: a given, a derived quantity, or stated in place."""
-    names = (f"given/{value.symbol}", f"derived/{value.symbol}") if value.symbol else (literal,)
-    return next(solution.number(name) for name in names if name in solution.values)
