@@ -105,35 +105,39 @@ class PropertyOperation:
             return (high - low) / (above - below)
         return np.zeros(np.shape(arguments["T"]))
 
-    def by_state(self, arguments: Mapping[str, Array], read: Read) -> Array:
-        """Read the samples group by group, each group at one pressure, fraction and phase."""
+    def by_state(self, arguments: Mapping[str, Array], read: Read, rows: int = 0) -> Array:
+        """Read the samples group by group, each group at one pressure, fraction and phase.
+
+        What is read is a figure for every sample, or so many ``rows`` of them.
+        """
+        ahead = (rows,) if rows else ()
         temperature = np.asarray(arguments["T"], dtype=float)
         varying = [np.asarray(arguments[name], dtype=float) for name in self.symbols[1:]]
         if not any([item.ndim for item in varying]):
-            return self._read([item.item() for item in varying], temperature, read)
+            return self._read([item.item() for item in varying], temperature, read, ahead)
         shape = np.broadcast_shapes(temperature.shape, *(item.shape for item in varying))
         flat = np.ascontiguousarray(np.broadcast_to(temperature, shape)).ravel()
         columns = np.stack([np.broadcast_to(item, shape).ravel() for item in varying])
-        result = np.empty(flat.shape)
+        result = np.empty((*ahead, flat.size))
         waiting = np.arange(flat.size)
         # Nearly always there are few states, one as a rule: they are found without sorting the samples.
         for _ in range(FEW_STATES):
             state = columns[:, waiting[0]]
             here = (columns[:, waiting] == state[:, None]).all(axis=0)
             if here.all() and waiting.size == flat.size:
-                return self._read([float(item) for item in state], flat, read).reshape(shape)
+                return self._read(state.tolist(), flat, read, ahead).reshape(*ahead, *shape)
             chosen = waiting[here]
-            result[chosen] = self._read([float(item) for item in state], flat[chosen], read)
+            result[..., chosen] = self._read(state.tolist(), flat[chosen], read, ahead)
             waiting = waiting[~here]
             if not waiting.size:
-                return result.reshape(shape)
+                return result.reshape(*ahead, *shape)
         states, group = np.unique(columns[:, waiting], axis=1, return_inverse=True)
         for index in range(states.shape[1]):
             chosen = waiting[group.ravel() == index]
-            result[chosen] = self._read([float(item) for item in states[:, index]], flat[chosen], read)
-        return result.reshape(shape)
+            result[..., chosen] = self._read(states[:, index].tolist(), flat[chosen], read, ahead)
+        return result.reshape(*ahead, *shape)
 
-    def _read(self, figures: list[float], temperature: Array, read: Read) -> Array:
+    def _read(self, figures: list[float], temperature: Array, read: Read, ahead: tuple[int, ...]) -> Array:
         named = dict(zip(self.symbols[1:], figures, strict=True))
         phase = self.phase
         if self.keeps_phase and not phase:
@@ -142,7 +146,7 @@ class PropertyOperation:
             state = self.source.state(named.get("p"), named.get("w"), phase)
         except PropertyFault:
             # A sample at a state that the fluid cannot have; of a record's own state the fault is told before.
-            return np.full(temperature.shape, np.nan)
+            return np.full((*ahead, *temperature.shape), np.nan)
         return read(state, temperature)
 
 

@@ -14,6 +14,7 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from calcbook.chain.circuit import branch_coefficient
+from calcbook.chain.joined import joined
 from calcbook.chain.types import (
     CLEAN,
     SERVICE,
@@ -27,7 +28,7 @@ from calcbook.chain.types import (
     follows_temperature,
 )
 from calcbook.formulas import evaluate
-from calcbook.library.operations import Slopes, run
+from calcbook.library.operations import Slopes, Together, run
 
 Array = np.ndarray
 # Samples solved together: arrays of this size stay in the processor's cache.
@@ -250,8 +251,43 @@ class _Plan:
     """
 
     wanted: str
-    following: tuple[ChainStep, ...]
+    following: tuple[ChainStep | Together, ...]
     outside: tuple[str, ...]
+
+
+class _Order:
+    """Steps parted by what moves: those that stay ``still``, and those that are ``following``.
+
+    ``follows`` are the ids of what moves and of the latter; ``together`` are they as they are best run.
+    """
+
+    def __init__(self, steps: tuple[ChainStep, ...], moving: tuple[str, ...]):
+        # Kept as well, so that no other steps can stand where they stood.
+        self.steps = steps
+        follows, still, following = set(moving), [], []
+        for step in steps:
+            if follows.isdisjoint(step.inputs.values()):
+                still.append(step)
+            else:
+                follows.add(step.id)
+                following.append(step)
+        self.follows = frozenset(follows)
+        self.still, self.following = tuple(still), tuple(following)
+        self.together = joined(following)
+        self.plans: dict[str, _Plan] = {}
+
+    def plan(self, wanted: str) -> _Plan:
+        """The steps that lead to one figure."""
+        plan = self.plans.get(wanted)
+        if plan is None:
+            needed = {wanted}
+            for step in reversed(self.steps):
+                if step.id in needed:
+                    needed.update(step.inputs.values())
+            steps = tuple(step for step in self.following if step.id in needed)
+            outside = {bound for step in steps for bound in step.inputs.values()} - self.follows
+            plan = self.plans[wanted] = _Plan(wanted, joined(steps), tuple(sorted(outside)))
+        return plan
 
 
 class Engine:
@@ -402,44 +438,28 @@ class Engine:
     # -- plans --------------------------------------------------------------------------------------
 
     def _plan(self, wanted: str, steps: tuple[ChainStep, ...], moving: tuple[str, ...]) -> _Plan:
-        """Sort steps into those that stay, which are evaluated now, and those that lead to ``wanted``."""
+        """What leads from what moves to ``wanted``; the steps that stay are evaluated now."""
         plan = self.plans.get(wanted)
         if plan is None:
-            follows = self._stay(steps, moving)
-            needed = {wanted}
-            for step in reversed(steps):
-                if step.id in needed:
-                    needed.update(step.inputs.values())
-            following = tuple(step for step in steps if step.id in needed and step.id in follows)
-            outside = {bound for step in following for bound in step.inputs.values() if bound not in follows}
-            plan = self.plans[wanted] = _Plan(wanted, following, tuple(sorted(outside)))
+            order = self._stay(steps, moving)
+            plan = self.plans[wanted] = order.plan(wanted)
         return plan
 
-    def _stay(self, steps: tuple[ChainStep, ...], moving: tuple[str, ...]) -> frozenset[str]:
-        """Evaluate the steps that do not follow what moves; returns the ids that do."""
-        follows, still = self._sorted(steps, moving)
-        waiting = [step for step in still if step.id not in self.values]
+    def _stay(self, steps: tuple[ChainStep, ...], moving: tuple[str, ...]) -> _Order:
+        """Evaluate the steps that do not follow what moves; returns which do."""
+        order = self._order(steps, moving)
+        waiting = [step for step in order.still if step.id not in self.values]
         if waiting:
-            run(waiting, self.values)
-        return follows
+            run(joined(waiting), self.values)
+        return order
 
-    def _sorted(
-        self, steps: tuple[ChainStep, ...], moving: tuple[str, ...]
-    ) -> tuple[frozenset[str], tuple[ChainStep, ...]]:
-        """The ids that follow what moves, and the steps that do not; the same in every solution of a chain."""
+    def _order(self, steps: tuple[ChainStep, ...], moving: tuple[str, ...]) -> _Order:
+        """Which steps follow what moves; the same in every solution of a chain."""
         key = (id(steps), moving)
-        kept = self.chain.memory.get(key)
-        if kept is None:
-            follows = set(moving)
-            still = []
-            for step in steps:
-                if follows.isdisjoint(step.inputs.values()):
-                    still.append(step)
-                else:
-                    follows.add(step.id)
-            # The steps are kept as well, so that no others can stand where they stood.
-            kept = self.chain.memory[key] = (frozenset(follows), tuple(still), steps)
-        return kept[0], kept[1]
+        order: _Order | None = self.chain.memory.get(key)
+        if order is None:
+            order = self.chain.memory[key] = _Order(steps, moving)
+        return order
 
     def _evaluated(
         self, plan: _Plan, samples: Array, given: Mapping[str, Array], wants_slopes: bool
@@ -524,16 +544,15 @@ class Engine:
         return choice if held is None else np.where(held[samples] >= 0, held[samples], choice)
 
     def _choose(self, group: Group, branch: Branch, samples: Array, given: Mapping[str, Array]) -> Array:
-        follows = self._stay(branch.choice_steps, _moving(group))
+        order = self._stay(branch.choice_steps, _moving(group))
         inputs = {bound for row in branch.choice for bound in row.inputs.values()}
-        if not inputs & follows:
+        if not inputs & order.follows:
             self.choices[branch.name] = self._rows(branch, self.values, self.size)
             return self.choices[branch.name][samples]
-        following = tuple(step for step in branch.choice_steps if step.id in follows)
-        outside = {bound for step in following for bound in step.inputs.values()} | inputs
-        values = {name: self.at(name, samples) for name in outside if name not in follows}
+        outside = {bound for step in order.following for bound in step.inputs.values()} | inputs
+        values = {name: self.at(name, samples) for name in outside if name not in order.follows}
         values.update(given)
-        run(following, values)
+        run(order.together, values)
         return self._rows(branch, values, len(samples))
 
     def _rows(self, branch: Branch, values: Mapping[str, Array], count: int) -> Array:
@@ -731,8 +750,7 @@ class Engine:
         self.values[branch_coefficient(group, branch.name)] = coefficient
 
     def _run_following(self, steps: tuple[ChainStep, ...], group: Group) -> None:
-        follows = self._stay(steps, _moving(group))
-        run(tuple(step for step in steps if step.id in follows), self.values)
+        run(self._stay(steps, _moving(group)).together, self.values)
 
     def _finish_side_by_side(self, group: Group, branch: Branch, choice: Array) -> Array:
         """Evaluate every method for the samples that chose it; its own figures are NaN for the others."""
@@ -742,19 +760,17 @@ class Engine:
         for method in np.unique(choice):
             candidate = branch.candidates[int(method)]
             samples = np.flatnonzero(choice == method)
-            follows = self._stay(candidate.steps, _moving(group))
-            names = {bound for step in candidate.steps for bound in step.inputs.values()} - follows | set(
-                _moving(group)
-            )
+            order = self._stay(candidate.steps, _moving(group))
+            names = {bound for step in candidate.steps for bound in step.inputs.values()} - order.follows
+            names |= set(_moving(group))
             part = {
                 name: self.at(name, samples)
                 for name in names | {candidate.coefficient}
                 if name in self.values
             }
-            following = tuple(step for step in candidate.steps if step.id in follows)
-            run(following, part)
+            run(order.together, part)
             coefficient[samples] = part[candidate.coefficient]
-            for step in following:
+            for step in order.following:
                 if step.id in shared:
                     continue
                 value = np.asarray(part[step.id])

@@ -6,6 +6,7 @@ with respect to the symbols asked for. Both come from the one text of the card.
 
 from __future__ import annotations
 
+from abc import ABC, abstractmethod
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Protocol
@@ -269,7 +270,15 @@ class Step(Protocol):
 Slopes = dict[str, dict[str, Array]]
 
 
-def run(steps: Sequence[Step], values: dict[str, Array], slopes: Slopes | None = None) -> None:
+class Together(ABC):
+    """Steps of the same inputs that are worked out in one go, as their makers know how."""
+
+    @abstractmethod
+    def run(self, values: dict[str, Array], slopes: Slopes | None) -> None:
+        """Put the figure of every step into ``values`` and, with ``slopes``, its derivatives there."""
+
+
+def run(steps: Sequence[Step | Together], values: dict[str, Array], slopes: Slopes | None = None) -> None:
     """Evaluate steps in order into ``values``; with ``slopes``, carry derivatives along the chain.
 
     ``slopes[name][seed]`` is the derivative of a value with respect to a seed; only names that depend
@@ -277,6 +286,9 @@ def run(steps: Sequence[Step], values: dict[str, Array], slopes: Slopes | None =
     """
     with np.errstate(all="ignore"):
         for step in steps:
+            if isinstance(step, Together):
+                step.run(values, slopes)
+                continue
             operation = step.operation
             if isinstance(operation, RelationOperation):
                 value = evaluate_quietly(operation.relation, values, step.inputs)
@@ -303,10 +315,15 @@ def _carried(step: Step, values: Mapping[str, Array], value: Array, slopes: Slop
     else:
         arguments = {local: values[name] for local, name in step.inputs.items()}
         local_slopes = operation.slopes(arguments, value, moving)
+    return chained(step.inputs, local_slopes, slopes)
+
+
+def chained(inputs: Mapping[str, str], local_slopes: Mapping[str, Array], slopes: Slopes) -> dict[str, Array]:
+    """The derivative with respect to every seed, from those with respect to local symbols."""
     total: dict[str, Array] = {}
-    for local in moving:
-        for seed, slope in slopes[step.inputs[local]].items():
-            part = _product(local_slopes[local], slope)
+    for local, own in local_slopes.items():
+        for seed, slope in slopes[inputs[local]].items():
+            part = _product(own, slope)
             total[seed] = total[seed] + part if seed in total else part
     return total
 

@@ -12,7 +12,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from calcbook.properties import backend, states
 from calcbook.properties.backend import PROPERTIES, SATURATION_PRESSURE, SATURATION_PROPERTIES, Code
-from calcbook.properties.curves import AGREEMENT, PRESSURE_SLOPE, SLOPE_AGREEMENT, Curve, Family
+from calcbook.properties.curves import AGREEMENT, PRESSURE_SLOPE, SLOPE_AGREEMENT, Asked, Curve, Family
 from calcbook.properties.faults import PropertyFault
 from calcbook.properties.findings import Finding
 from calcbook.properties.fluid import Fluid, FluidAtPressure, Outside, Phase, _floats, _known, read_phase
@@ -148,6 +148,9 @@ class IncompressibleAtPressure(_BackedAtPressure):
     def _flat(self, property_name: str, temperatures: Array, sloped: bool) -> Array:
         return _along(self._line, property_name, temperatures, sloped)
 
+    def _flat_rows(self, asked: tuple[Asked, ...], temperatures: Array) -> Array:
+        return _rows_along(self._line, asked, temperatures)
+
 
 @dataclass(frozen=True)
 class Saturated(_BackedAtPressure):
@@ -241,6 +244,9 @@ class Saturated(_BackedAtPressure):
 
     def _flat(self, property_name: str, temperatures: Array, sloped: bool) -> Array:
         return _along(self.curve(), property_name, temperatures, sloped)
+
+    def _flat_rows(self, asked: tuple[Asked, ...], temperatures: Array) -> Array:
+        return _rows_along(self.curve(), asked, temperatures)
 
 
 @dataclass(frozen=True)
@@ -339,6 +345,17 @@ class PureAtPressure(_BackedAtPressure):
                 return _along(curve, property_name, temperatures, sloped)
             if chosen.any():
                 result[chosen] = _along(curve, property_name, temperatures[chosen], sloped)
+        return result
+
+    def _flat_rows(self, asked: tuple[Asked, ...], temperatures: Array) -> Array:
+        if temperatures.size == 1:
+            return super()._flat_rows(asked, temperatures)
+        result = np.full((len(asked), temperatures.size), np.nan)
+        for chosen, curve, _ in self._curves(temperatures):
+            if chosen.all():
+                return _rows_along(curve, asked, temperatures)
+            if chosen.any():
+                result[:, chosen] = _rows_along(curve, asked, temperatures[chosen])
         return result
 
     def _flat_one(self, property_name: str, temperature: Array, sloped: bool) -> Array:
@@ -481,4 +498,14 @@ def _along(curve: Curve, name: str, temperatures: Array, sloped: bool) -> Array:
         return ask(name, temperatures)
     result = np.full(temperatures.shape, np.nan)
     result[inside] = ask(name, temperatures[inside])
+    return result
+
+
+def _rows_along(curve: Curve, asked: tuple[Asked, ...], temperatures: Array) -> Array:
+    """Values and slopes on a curve, a row each; NaN outside its interval."""
+    inside = (temperatures >= curve.low) & (temperatures <= curve.high)
+    if inside.all():
+        return curve.rows(asked, temperatures)
+    result = np.full((len(asked), temperatures.size), np.nan)
+    result[:, inside] = curve.rows(asked, temperatures[inside])
     return result

@@ -21,6 +21,7 @@ from calcbook.properties.store import Store
 
 DEPTH = 10  # the smallest panel is 1/1024 of the interval: below 2 K for steam up to 2000 K
 AGREEMENT = 1e-11  # of a series with the backend, relative (of the largest value where not in logarithms)
+NEGLECTED = 0.1  # so much of the agreement may be left out at the end of a series, where its terms are noise
 SLOPE_AGREEMENT = 1e-5  # of slopes in pressure: differences of the backend hold about 1e-6
 PRESSURE_SLOPE = " per pressure"
 
@@ -36,6 +37,10 @@ class Family:
     agreement: float
 
 
+# A property of a curve, and whether its slope along the curve is asked for.
+Asked = tuple[str, bool]
+
+
 class _Panel(NamedTuple):
     """One part of a curve's interval with its series; ``path`` says by which halves it is reached."""
 
@@ -43,6 +48,21 @@ class _Panel(NamedTuple):
     low: float
     high: float
     coefficients: list[float]
+
+
+class _Rows(NamedTuple):
+    """Series of several properties, and slopes, laid out to be summed together: a row of figures each.
+
+    ``logged`` are the rows of logarithms; ``sloped`` are the rows of their slopes, ``of`` the rows of what they
+    are slopes of.
+    """
+
+    coefficients: Array
+    low: Array
+    high: Array
+    logged: list[int]
+    sloped: list[int]
+    of: list[int]
 
 
 @dataclass(frozen=True, eq=False)
@@ -54,6 +74,9 @@ class Curve:
     store: Store
     families: tuple[Family, ...]
     _sloped: dict[tuple[str, str], list[float]] = field(init=False, repr=False, default_factory=dict)
+    _laid_out: dict[tuple[tuple[Asked, ...], tuple[str, ...]], _Rows] = field(
+        init=False, repr=False, default_factory=dict
+    )
 
     def value(self, name: str, temperatures: Array) -> Array:
         """The property at temperatures (1-d, all within the interval); NaN where the backend fails."""
@@ -62,6 +85,69 @@ class Curve:
     def slope(self, name: str, temperatures: Array) -> Array:
         """Its derivative along the curve, from the same series."""
         return self._walk(name, temperatures, sloped=True)
+
+    def rows(self, asked: tuple[Asked, ...], temperatures: Array) -> Array:
+        """Values and slopes at the same temperatures (1-d, within the interval), a row for each of ``asked``.
+
+        The bits are those of ``value`` and ``slope``. Where one panel of each property holds all the
+        temperatures, their series are summed together.
+        """
+        panels = self._common_panels(asked, temperatures)
+        if panels is None:
+            return np.stack([self._walk(name, temperatures, sloped) for name, sloped in asked])
+        place = (asked, tuple(panel.path for panel in panels))
+        rows = self._laid_out.get(place)
+        if rows is None:
+            rows = self._laid_out[place] = self._lay_out(asked, panels)
+        result = series.evaluate_rows(rows.coefficients, rows.low, rows.high, temperatures)
+        result[rows.logged] = np.exp(result[rows.logged])
+        result[rows.sloped] = result[rows.of] * result[rows.sloped]
+        return result[: len(asked)]
+
+    def _common_panels(self, asked: tuple[Asked, ...], temperatures: Array) -> list[_Panel] | None:
+        """For each of ``asked`` the panel that holds all temperatures; None where there is none, or one sample."""
+        if temperatures.size < 2:
+            return None
+        least, most = float(temperatures.min()), float(temperatures.max())
+        panels: dict[str, _Panel] = {}
+        for name, _ in asked:
+            if name in panels:
+                continue
+            path, low, high = "", self.low, self.high
+            while (coefficients := self._panel(name, path, low, high)) is None and len(path) < DEPTH:
+                middle = 0.5 * (low + high)
+                if (least < middle) != (most < middle):
+                    return None
+                path, low, high = (path + "0", low, middle) if most < middle else (path + "1", middle, high)
+            if coefficients is None:
+                return None
+            panels[name] = _Panel(path, low, high, coefficients)
+        self.store.save()
+        return [panels[name] for name, _ in asked]
+
+    def _lay_out(self, asked: tuple[Asked, ...], panels: list[_Panel]) -> _Rows:
+        """The series of ``asked``, then those of the values that logarithmic slopes need and were not asked for."""
+        needed = dict(zip(asked, panels, strict=True))
+        for (name, sloped), panel in zip(asked, panels, strict=True):
+            if sloped and logged(name):
+                needed.setdefault((name, False), panel)
+        places = {key: place for place, key in enumerate(needed)}
+        listed = [
+            self._derivative(name, panel) if sloped else panel.coefficients
+            for (name, sloped), panel in needed.items()
+        ]
+        coefficients = np.zeros((max(map(len, listed)), len(listed), 1))
+        for place, found in enumerate(listed):
+            coefficients[: len(found), place, 0] = found
+        slopes = [(name, sloped) for name, sloped in needed if sloped and logged(name)]
+        return _Rows(
+            coefficients,
+            np.array([[panel.low] for panel in needed.values()]),
+            np.array([[panel.high] for panel in needed.values()]),
+            [place for (name, sloped), place in places.items() if logged(name) and not sloped],
+            [places[key] for key in slopes],
+            [places[name, False] for name, _ in slopes],
+        )
 
     def _walk(self, name: str, temperatures: Array, sloped: bool) -> Array:
         if temperatures.size == 1:
@@ -189,6 +275,6 @@ def _accepted(
         values, targets, scale = np.log(values), np.log(targets), 1.0
     else:
         scale = float(np.max(np.abs(everything)))
-    coefficients = series.fit(values)
+    coefficients = series.shortened(series.fit(values), NEGLECTED * agreement * scale)
     apart = np.abs(series.evaluate(coefficients, low, high, tested) - targets)
     return coefficients if np.max(apart) <= agreement * scale else None

@@ -10,6 +10,7 @@ import numpy as np
 from numpy.typing import ArrayLike
 
 from calcbook.properties.backend import PROPERTIES
+from calcbook.properties.curves import Asked
 from calcbook.properties.faults import PropertyFault
 from calcbook.properties.findings import Finding
 from calcbook.properties.series import Array
@@ -76,6 +77,19 @@ class FluidAtPressure(ABC):
     def slope(self, property_name: str, temperature: ArrayLike, *, outside: Outside = "fault") -> Array:
         """d(property)/dT at this pressure; along the saturation line where no pressure is given."""
         return self._answer(property_name, temperature, outside, sloped=True)
+
+    def rows(self, asked: tuple[Asked, ...], temperature: ArrayLike) -> Array:
+        """Properties and slopes at the same temperatures, NaN where there is none: a row for each of ``asked``.
+
+        The bits are those of ``value`` and ``slope`` one by one; together they take less time.
+        """
+        for name, _ in asked:
+            _known(name, self.properties)
+        temperatures = _floats(temperature)
+        return self._flat_rows(asked, temperatures.ravel()).reshape(len(asked), *temperatures.shape)
+
+    def _flat_rows(self, asked: tuple[Asked, ...], temperatures: Array) -> Array:
+        return np.stack([self._flat(name, temperatures, sloped) for name, sloped in asked])
 
     def values_at(
         self, property_name: str, temperature: ArrayLike, pressure: ArrayLike, *, outside: Outside = "fault"

@@ -39,6 +39,15 @@ def fit(values: Array) -> list[float]:
     return [float(coefficient) for coefficient in coefficients]
 
 
+def shortened(coefficients: list[float], neglected: float) -> list[float]:
+    """The series without its last terms, as far as they come to ``neglected`` at most; never without its first."""
+    left_out, count = 0.0, len(coefficients)
+    while count > 1 and left_out + abs(coefficients[count - 1]) <= neglected:
+        count -= 1
+        left_out += abs(coefficients[count])
+    return coefficients[:count]
+
+
 def evaluate(coefficients: Sequence[float], low: float, high: float, at: Array) -> Array:
     """The sum of the series at ``at`` (any shape).
 
@@ -52,6 +61,23 @@ def evaluate(coefficients: Sequence[float], low: float, high: float, at: Array) 
     later, last, free = np.zeros_like(x), np.zeros_like(x), np.empty_like(x)
     for coefficient in reversed(coefficients[1:]):
         # double*later - last + coefficient, in memory that is there already
+        np.multiply(double, later, out=free)
+        np.subtract(free, last, out=free)
+        np.add(free, coefficient, out=free)
+        later, last, free = free, later, last
+    return x * later - last + coefficients[0]
+
+
+def evaluate_rows(coefficients: Array, low: Array, high: Array, at: Array) -> Array:
+    """The sums of several series at the same points (1-d), a row each, to the same bits as one by one.
+
+    ``coefficients`` have a series in each column (terms, series, 1); a shorter one ends in zeros. ``low`` and
+    ``high`` are the ends of each interval (series, 1).
+    """
+    x = (at - 0.5 * (low + high)) / (0.5 * (high - low))
+    double = x + x
+    later, last, free = np.zeros_like(x), np.zeros_like(x), np.empty_like(x)
+    for coefficient in coefficients[:0:-1]:
         np.multiply(double, later, out=free)
         np.subtract(free, last, out=free)
         np.add(free, coefficient, out=free)

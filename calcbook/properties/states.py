@@ -118,7 +118,8 @@ def _phase(known: Known, temperature: float, stated: str | None, actual: str) ->
     boiling = f"{known.bubble:.8g} K"
     if known.dew != known.bubble:
         boiling = f"{known.bubble:.8g} K (dew {known.dew:.8g} K)"
-    between = known.bubble < temperature < known.dew and known.dew - known.bubble > 1e-3
+    # At its bubble point itself a stated liquid is saturated liquid, whatever the last bits say; so a vapour.
+    between = known.bubble * (1.0 + TWO_PHASE_BAND) < temperature < known.dew * (1.0 - TWO_PHASE_BAND)
     if actual == "two-phase" and (stated is None or between):
         message = f"{at} is at its boiling temperature, {boiling}: two phases"
         yield Finding("two-phase-state", "fault", message, figures)

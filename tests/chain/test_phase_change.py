@@ -391,10 +391,9 @@ def test_cards_of_phase_change_have_an_outside_check_or_are_on_trial() -> None:
 def test_a_blend_that_boils_over_a_range_is_not_taken_as_pure(tmp_path: Path) -> None:
     """R407C: its glide near 9 bar is about 5 K (common practice)."""
     body = outside_tube("R407C", "liquid", "9 bara", "pool-boiling-tube", "32 degC")
-    with pytest.raises(Faults, match="two-phase-state"):
-        solved(tmp_path, body)
     by_temperature = body.replace(
         "temperature: saturation, pressure: p", "temperature: {value: 15 degC, source: test}"
     )
-    text = items(solved(tmp_path, by_temperature))["stream vapour/boils over a range"]
-    assert 4.0 < float(text.split("range of ")[1].split(" K")[0]) < 6.0
+    for text in (body, by_temperature):
+        item = items(solved(tmp_path, text))["stream vapour/boils over a range"]
+        assert 4.0 < float(item.split("range of ")[1].split(" K")[0]) < 6.0

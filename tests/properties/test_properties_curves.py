@@ -250,3 +250,45 @@ def test_one_sample_has_the_bits_it_has_among_others(coefficients, low, width, p
     alone = [chebyshev.evaluate(coefficients, low, low + width, at[i : i + 1])[0] for i in range(at.size)]
     assert np.array_equal(several, np.array(alone), equal_nan=True)
     assert chebyshev.evaluate(coefficients, low, low + width, at[0].reshape(())).shape == ()
+
+
+@pytest.mark.parametrize(("name", "pressure", "phase", "span"), CURVES)
+def test_properties_read_together_have_the_bits_of_each_alone(name, pressure, phase, span):
+    # Within one panel of every property, over several, and beyond the ends of the curve (NaN).
+    fluid = pure(name).at(pressure, phase)
+    low, high = span
+    asked = tuple((quantity, sloped) for sloped in (True, False) for quantity in PROPERTIES)
+    for temperatures in (
+        np.linspace(low, low + 2.0, 9),
+        np.linspace(low, high, 37),
+        np.array([low, 1.0, high, np.nan, 5000.0]),
+        np.full((2, 3), low + 1.0),
+        np.asarray(high),
+    ):
+        together = fluid.rows(asked, temperatures)
+        for row, (quantity, sloped) in zip(together, asked, strict=True):
+            alone = (fluid.slope if sloped else fluid.value)(quantity, temperatures, outside="nan")
+            np.testing.assert_array_equal(row, alone)
+
+
+def test_a_slope_alone_brings_its_value_along_unseen():
+    water = pure("water").at(4e5, "liquid")
+    at = np.array([300.0, 310.0])
+    found = water.rows((("viscosity", True),), at)
+    assert found.shape == (1, 2)
+    np.testing.assert_array_equal(found[0], water.slope("viscosity", at))
+
+
+@given(st.lists(st.floats(-1.0, 1.0), min_size=1, max_size=28), st.floats(0.0, 2.0))
+def test_a_shortened_series_differs_by_what_was_neglected(coefficients, neglected):
+    short = chebyshev.shortened(coefficients, neglected)
+    assert short == coefficients[: len(short)]
+    assert short
+    left_out = coefficients[len(short) :]
+    assert sum(map(abs, left_out)) <= neglected + 1e-15 * len(left_out)  # rounding of the sum
+    at = np.linspace(0.0, 1.0, 40)
+    # Chebyshev polynomials lie between -1 and 1; Clenshaw's recurrence rounds each of 28 sums of at most 28
+    apart = chebyshev.evaluate(short, 0.0, 1.0, at) - chebyshev.evaluate(coefficients, 0.0, 1.0, at)
+    assert np.max(np.abs(apart)) <= neglected + 28 * 28 * 2e-16
+    if len(short) > 1:
+        assert sum(map(abs, coefficients[len(short) - 1 :])) > neglected

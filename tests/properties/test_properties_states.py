@@ -73,6 +73,19 @@ def test_air_has_two_boiling_temperatures():
     assert _codes(air, 80.0, "liquid") == [("two-phase-state", "fault")]
 
 
+def test_a_blend_between_its_bubble_and_its_dew_point():
+    """R407C at 9 bar boils from 15 to 21 degC (its glide is about 6 K, common practice)."""
+    bubble, dew = (coolprop.PropsSI("T", "P", 9e5, "Q", quality, "R407C") for quality in (0, 1))
+    liquid, gas = pure("R407C").at(9e5, "liquid"), pure("R407C").at(9e5, "gas")
+    for temperature in (bubble + 0.01, 0.5 * (bubble + dew), dew - 0.01):
+        for side, phase in ((liquid, "liquid"), (gas, "gas")):
+            assert ("two-phase-state", "fault") in _codes(side, temperature, phase)
+    # At either point itself the stated phase is a saturated one, whatever the last bits say.
+    for part in (-1e-10, 0.0, 1e-10):
+        assert _codes(liquid, bubble * (1.0 + part), "liquid") == []
+        assert _codes(gas, dew * (1.0 + part), "gas") == []
+
+
 def test_freezing():
     water = pure("water")
     assert _codes(water.at(4e5), 270.0, "liquid") == [("below-freezing", "fault")]

@@ -9,7 +9,7 @@ from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Quote, Ta
 from calcbook.record.numbers import celsius, in_report_unit, percent
 from calcbook.record.page import HOUSE_METHOD, Page, case_name, counted
 from calcbook.record.sections.head import confirmation
-from calcbook.record.sections.validity import residual
+from calcbook.record.sections.validity import SMALLEST_RESIDUAL, residual
 
 FOR_CHECKER = "for the checker:"
 EXCESS_LIMIT = 0.5  # common practice: above it the clean unit behaves as another machine
@@ -111,6 +111,9 @@ def _closure(page: Page) -> str:
     if not rows:
         return "There is nothing to close."
     worst = max(rows, key=lambda row: row.residual)
+    if worst.residual <= SMALLEST_RESIDUAL:
+        # Which of them is the largest is a matter of the last bits there, and says nothing.
+        return f"Residual of every equation in every case: {residual(worst.residual)}."
     return f"Largest residual over every case: {residual(worst.residual)} ({worst.what}, {worst.condition})."
 
 

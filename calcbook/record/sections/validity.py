@@ -11,6 +11,9 @@ from calcbook.record.page import HOUSE_METHOD, Page, counted
 
 PUBLISHED = "published"
 RESIDUAL_DIGITS = 2
+# Residuals are told from one another down to this power of ten.
+SMALLEST_EXPONENT = -12
+SMALLEST_RESIDUAL = 10.0**SMALLEST_EXPONENT
 
 
 def validity(page: Page) -> list[Block]:
@@ -215,7 +218,7 @@ def _closure_row(row: ClosureRow) -> tuple[str, ...]:
 
 def residual(value: float) -> str:
     """A residual as a bound in powers of ten: its last bits differ between processors and say nothing."""
-    for exponent in range(-12, 0):
+    for exponent in range(SMALLEST_EXPONENT, 0):
         if abs(value) <= 10.0**exponent:
             return f"below 1e\u2212{-exponent}"
     return number(value, RESIDUAL_DIGITS)
