@@ -32,6 +32,8 @@ STEP_TOLERANCE = 1e-15
 # drop is beside the temperatures that it is taken from.
 SMALLEST_STEP = 1e-13
 LARGEST_LOG_STEP = 2.0
+# So few samples are moved in one call, though some of them need no new slopes.
+FEW_SAMPLES = 500
 # Above this step (relative), and where a step is not this much smaller than the last, slopes are taken again.
 FRESH_SLOPES_ABOVE = 0.02
 SLOWEST_RATIO = 0.03
@@ -40,8 +42,12 @@ LARGEST_RISE = 2.0
 ROUNDING = 1e-12
 
 
-def close(engine: Engine, passes: int = MAXIMUM_PASSES) -> None:
-    """Find heat flow and drops of every sample; writes ``flow``, ``drops`` and ``converged``."""
+def close(engine: Engine, passes: int = MAXIMUM_PASSES, near: Array | None = None) -> None:
+    """Find heat flow and drops of every sample; writes ``flow``, ``drops`` and ``converged``.
+
+    ``near`` are unknowns to begin from, where they are known and of the right sign; what does not close from there
+    is begun as usual.
+    """
     if not engine.moving:
         engine.flow = engine.difference / engine.still
         engine.converged = np.isfinite(engine.flow)
@@ -51,8 +57,11 @@ def close(engine: Engine, passes: int = MAXIMUM_PASSES) -> None:
     samples = np.flatnonzero(~idle)
     engine.converged = idle.copy()
     if len(samples):
-        flow, drops = start(engine, samples)
-        engine.converged[samples] = newton(engine, samples, flow, drops, passes)
+        if near is not None:
+            engine.converged[samples] = newton(engine, samples, *started_near(engine, samples, near), passes)
+            samples = samples[~engine.converged[samples] & np.isfinite(near[0, samples])]
+        if len(samples):
+            engine.converged[samples] = newton(engine, samples, *start(engine, samples), passes)
 
 
 def start(engine: Engine, samples: Array) -> tuple[Array, Array]:
@@ -81,6 +90,21 @@ def start(engine: Engine, samples: Array) -> tuple[Array, Array]:
     better = difference / (still + resistances.sum(axis=0))
     good = np.isfinite(better) & (better != 0.0)
     return np.where(good, better, flow), np.where(good, better * resistances, drops)
+
+
+def started_near(engine: Engine, samples: Array, near: Array) -> tuple[Array, Array]:
+    """First values from unknowns of a like circuit, made to add up; the usual ones where there are none."""
+    unknown = np.take(near, samples, axis=1)
+    usable = np.isfinite(unknown).all(axis=0)
+    if not engine.foreign:
+        difference, still = engine.part(engine.difference, samples), engine.part(engine.still, samples)
+        usable &= (np.sign(unknown) == np.sign(difference)).all(axis=0)
+        unknown = unknown * (difference / (unknown[1:].sum(axis=0) + unknown[0] * still))
+    others = np.flatnonzero(~usable)
+    if len(others):
+        flow, drops = start(engine, samples[others])
+        unknown[0, others], unknown[1:, others] = flow, drops
+    return unknown[0], unknown[1:]
 
 
 def temperature_range(engine: Engine, samples: Array) -> tuple[Array, Array]:
@@ -150,18 +174,25 @@ class _Passes:
 
     def _pass(self, active: Array) -> None:
         fresh = self.fresh[active]
-        for places, wants_slopes in ((active[fresh], True), (active[~fresh], False)):
-            if len(places):
-                self._move(places, wants_slopes)
+        if len(active) <= FEW_SAMPLES or fresh.all() or not fresh.any():
+            self._move(active, fresh)
+            return
+        for places in (active[fresh], active[~fresh]):
+            self._move(places, self.fresh[places])
 
-    def _move(self, places: Array, wants_slopes: bool) -> None:
-        """One pass for some samples: their laws, then the next step, or half of the last one."""
+    def _move(self, places: Array, fresh: Array) -> None:
+        """One pass for some samples: their laws, then the next step, or half of the last one.
+
+        Those that are ``fresh`` take new slopes, the others those that they have.
+        """
         unknown = _taken(self.unknown, places)
-        residual, slopes = self._laws(unknown, places, wants_slopes)
-        if slopes is None:
-            slopes = self.slopes.part(places)
-        else:
+        residual, slopes = self._laws(unknown, places, bool(fresh.any()))
+        if slopes is not None and fresh.all():
             self.slopes.put(places, slopes)
+        else:
+            if slopes is not None:
+                self.slopes.put(places[fresh], slopes.part(np.flatnonzero(fresh)))
+            slopes = self.slopes.part(places)
         summed, weights, by_flow = self._sum(unknown, places)
         step = _substituted(slopes, residual, weights, by_flow, summed)
         merit = self._merit(residual, summed, places)

@@ -12,7 +12,7 @@ from typing import Any
 
 import numpy as np
 
-from calcbook.chain.solve import closed
+from calcbook.chain.solve import UNKNOWNS, closed
 from calcbook.chain.types import Candidate, Chain
 from calcbook.library.operations import run
 
@@ -70,6 +70,8 @@ class _Passes:
         self.thorough = thorough
         self.open = tuple(item for item in chain.open_figures if item.id not in inputs)
         self.static = frozenset(step.id for step in chain.steps)
+        # What the circuit closed with in the last pass, by condition, of the samples still on their way.
+        self.unknowns: dict[str, Array | None] = {}
 
     def found(self) -> dict[str, Array]:
         """The figures by id, one row of samples each."""
@@ -86,6 +88,8 @@ class _Passes:
             following = _joined(came_out, gap, before)
             before = (came_out[:, open_still], gap[:, open_still])
             put_in, active = following[:, open_still], active[open_still]
+            for condition, rows in self.unknowns.items():
+                self.unknowns[condition] = None if rows is None else rows[:, open_still]
             if not len(active):
                 break
         return {item.id: result[place] for place, item in enumerate(self.open)}
@@ -113,9 +117,17 @@ class _Passes:
                     run(self.chain.steps, values)
             else:
                 choices = {name: choice[active] for name, choice in self.choices.items()}
-                values = closed(
-                    self.chain, inputs, condition, self.forced, wanted, self.thorough, choices
-                ).values
+                solution = closed(
+                    self.chain,
+                    inputs,
+                    condition,
+                    self.forced,
+                    (*wanted, UNKNOWNS),
+                    self.thorough,
+                    choices,
+                    self.unknowns.get(condition),
+                )
+                values, self.unknowns[condition] = solution.values, solution.unknowns
             given |= {name: values[name] for name in wanted}
         count = (len(active),)
         return np.array(

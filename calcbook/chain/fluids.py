@@ -115,17 +115,25 @@ class PropertyOperation:
         varying = [np.asarray(arguments[name], dtype=float) for name in self.symbols[1:]]
         if not any([item.ndim for item in varying]):
             return self._read([item.item() for item in varying], temperature, read, ahead)
+        state = [item.flat[0] for item in varying]
+        if all([item.shape in ((), temperature.shape) for item in varying]) and all(
+            [bool((item == first).all()) for item, first in zip(varying, state, strict=True)]
+        ):
+            return self._read([float(first) for first in state], temperature, read, ahead)
+        return self._by_states(temperature, varying, read, ahead)
+
+    def _by_states(
+        self, temperature: Array, varying: list[Array], read: Read, ahead: tuple[int, ...]
+    ) -> Array:
         shape = np.broadcast_shapes(temperature.shape, *(item.shape for item in varying))
         flat = np.ascontiguousarray(np.broadcast_to(temperature, shape)).ravel()
         columns = np.stack([np.broadcast_to(item, shape).ravel() for item in varying])
         result = np.empty((*ahead, flat.size))
         waiting = np.arange(flat.size)
-        # Nearly always there are few states, one as a rule: they are found without sorting the samples.
+        # Nearly always there are few states: they are found without sorting the samples.
         for _ in range(FEW_STATES):
             state = columns[:, waiting[0]]
             here = (columns[:, waiting] == state[:, None]).all(axis=0)
-            if here.all() and waiting.size == flat.size:
-                return self._read(state.tolist(), flat, read, ahead).reshape(*ahead, *shape)
             chosen = waiting[here]
             result[..., chosen] = self._read(state.tolist(), flat[chosen], read, ahead)
             waiting = waiting[~here]

@@ -86,6 +86,7 @@ class Samples:
     """Solved samples with their verdicts. ``missing`` is 0 for an answer, else the place of a reason.
 
     Samples that cannot have an answer were not solved: ``solved`` are the others, and verdicts stand for them.
+    ``unknowns`` are those of all samples, rows by condition: what the circuit of each was closed with.
     """
 
     missing: Array
@@ -93,6 +94,7 @@ class Samples:
     results: Mapping[str, ResultFigures] = field(default_factory=dict)
     verdicts: Mapping[Key, Verdicts] = field(default_factory=dict)
     reasons: list[str] = field(default_factory=lambda: [""])
+    unknowns: Array | None = None
 
     def mark(self, mask: Array, reason: str, places: Array | None = None) -> None:
         """Say of samples (all, or those at ``places``) that have an answer so far why they have none."""
@@ -140,12 +142,14 @@ def evaluate_samples(
     case_of: Array | None = None,
     phases: Mapping[str, Sequence[str]] | None = None,
     directions: Sequence[float] = (),
+    start: Array | None = None,
 ) -> Samples:
     """Solve samples (inputs by id, one row or one figure for all) clean and in service, with every verdict.
 
     ``case_of`` is the place in ``cases`` that each sample belongs to: acceptances may hold for one case only.
     ``phases`` are the phases of streams by case, ``directions`` the signs of the heat flow: a sample in which one
-    is another gets no answer. The calculation's own cases must have solved without a fault.
+    is another gets no answer. ``start`` are unknowns of like samples to begin from. The calculation's own cases must
+    have solved without a fault.
     """
     size = max(np.size(value) for value in inputs.values())
     belongs = case_of if case_of is not None else np.zeros(size, dtype=int)
@@ -164,7 +168,7 @@ def evaluate_samples(
             inputs = {
                 name: value[samples.solved] if np.ndim(value) else value for name, value in inputs.items()
             }
-        _solve(chain, inputs, cases, belongs[samples.solved], samples)
+        _solve(chain, inputs, cases, belongs[samples.solved], samples, start)
     if directions and "heat_flow_service" in samples.results:
         flow = np.sign(samples.results["heat_flow_service"].values)
         samples.mark(flow != np.array(directions)[belongs[samples.solved]], TURNED, samples.solved)
@@ -179,9 +183,20 @@ def follows_difference(chain: Chain) -> bool:
 
 
 def _solve(
-    chain: Chain, inputs: Mapping[str, Array], cases: Sequence[str], case_of: Array, samples: Samples
+    chain: Chain,
+    inputs: Mapping[str, Array],
+    cases: Sequence[str],
+    case_of: Array,
+    samples: Samples,
+    start: Array | None,
 ) -> None:
-    both = solve_both(chain, inputs, thorough=False)
+    size, count = len(samples.missing), len(samples.solved)
+    if start is not None:
+        start = np.concatenate([start[0][:, samples.solved], start[1][:, samples.solved]], axis=1)
+    both = solve_both(chain, inputs, thorough=False, start=start)
+    if both.unknowns is not None:
+        samples.unknowns = np.full((2, len(both.unknowns), size), np.nan)
+        samples.unknowns[:, :, samples.solved] = both.unknowns.reshape(-1, 2, count).swapaxes(0, 1)
     evaluate_pressure_drops(chain, both)
     solutions = conditions_of(both)
     samples.results = result_figures(chain, solutions)

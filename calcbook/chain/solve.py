@@ -38,6 +38,8 @@ RESIDUAL_TOLERANCE = 1e-10
 # Four roundings of a temperature, relative: so well is a surface temperature known.
 RESOLUTION = 1e-15
 ONE = np.ones(())
+# Among what is to be kept of a solution: its unknowns.
+UNKNOWNS = "solution/unknowns"
 
 
 @dataclass
@@ -47,6 +49,8 @@ class Solution:
     ``values`` hold arrays of the samples' shape (0-d for a record, and for what does not vary). ``chosen`` is
     the candidate of each branch per sample. ``converged`` is False for a sample without an answer. ``jumps``
     marks, per film, the samples whose law has no root at a joint; ``jump_sides`` holds both coefficients.
+    ``unknowns`` are what the circuit was closed with, a row each of one row of samples: the heat flow, then the
+    drop of every element that moves (NaN without an answer); from there a like circuit closes in fewer passes.
     """
 
     condition: str
@@ -55,6 +59,7 @@ class Solution:
     converged: Array
     jumps: dict[str, Array] = field(default_factory=dict)
     jump_sides: dict[str, tuple[Array, Array]] = field(default_factory=dict)
+    unknowns: Array | None = None
 
     def figure(self, name: str) -> Array:
         """One figure at every sample; 0-d where it does not vary."""
@@ -95,6 +100,7 @@ def solve(
     keep: Collection[str] | None = None,
     thorough: bool = True,
     choices: Mapping[str, Array] | None = None,
+    start: Array | None = None,
 ) -> Solution:
     """Solve a chain for one condition on SI arrays of its inputs (by id, broadcast together).
 
@@ -102,13 +108,14 @@ def solve(
     steps whose values are wanted; without it all are kept, which for many samples takes much memory. Figures
     that the file leaves open are found first, unless they stand in ``inputs``. A search over many samples is not
     ``thorough``: it gives up a sample after a few passes of Newton's method and brackets none, which takes thousands.
-    ``choices`` gives the number of a film's candidate for every sample, in place of its own choice.
+    ``choices`` gives the number of a film's candidate for every sample, in place of its own choice. ``start`` are the
+    ``unknowns`` to begin from, NaN for a sample without any; the answers differ from others by rounding alone.
     """
     if chain.open_figures:
         from calcbook.chain.completing import completed
 
         inputs = completed(chain, inputs, forced, choices, thorough)
-    return closed(chain, inputs, condition, forced, keep, thorough, choices)
+    return closed(chain, inputs, condition, forced, keep, thorough, choices, start)
 
 
 def closed(
@@ -119,6 +126,7 @@ def closed(
     keep: Collection[str] | None = None,
     thorough: bool = True,
     choices: Mapping[str, Array] | None = None,
+    start: Array | None = None,
 ) -> Solution:
     """As ``solve``, for inputs that leave nothing open."""
     shape = np.broadcast_shapes(*(np.shape(value) for value in inputs.values()))
@@ -128,27 +136,29 @@ def closed(
     flat = {name: _flat(value, shape) for name, value in inputs.items()}
     joined = _Joined(condition, shape, size)
     with np.errstate(all="ignore"):
-        for start in range(0, size, PIECE):
-            piece = slice(start, min(start + PIECE, size))
+        for first in range(0, size, PIECE):
+            piece = slice(first, min(first + PIECE, size))
             part = {name: value[piece] if value.ndim else value for name, value in flat.items()}
-            engine = Engine(chain, part, condition, forced or {}, 1 if shape == () else piece.stop - start)
+            engine = Engine(chain, part, condition, forced or {}, 1 if shape == () else piece.stop - first)
             engine.choices.update({name: choice[piece] for name, choice in (choices or {}).items()})
-            engine.solve(thorough)
+            engine.solve(thorough, None if start is None else start[:, piece])
             joined.take(engine, piece, keep)
     return joined.solution()
 
 
-def solve_both(chain: Chain, inputs: Mapping[str, Array], thorough: bool = True) -> Solution:
+def solve_both(
+    chain: Chain, inputs: Mapping[str, Array], thorough: bool = True, start: Array | None = None
+) -> Solution:
     """Solve samples in one row (inputs by id, or one figure for all) clean and in service, in one call.
 
-    The first half of the solution is clean, the second in service: ``conditions_of`` parts them.
+    The first half of the solution (and of ``start``) is clean, the second in service: ``conditions_of`` parts them.
     """
     size = max(np.size(value) for value in inputs.values())
     doubled = {
         name: np.concatenate([value, value]) if np.ndim(value) else value for name, value in inputs.items()
     }
     doubled[SERVICE_FLAG] = np.repeat([0.0, 1.0], size)
-    return solve(chain, doubled, SERVICE, thorough=thorough)
+    return solve(chain, doubled, SERVICE, thorough=thorough, start=start)
 
 
 def conditions_of(both: Solution) -> dict[str, Solution]:
@@ -175,6 +185,7 @@ def _part(solution: Solution, condition: str, samples: slice) -> Solution:
         solution.converged[samples],
         cut(solution.jumps),
         sides,
+        None if solution.unknowns is None else solution.unknowns[:, samples],
     )
 
 
@@ -197,6 +208,7 @@ class _Joined:
     jumps: dict[str, Array] = field(default_factory=dict)
     lower: dict[str, Array] = field(default_factory=dict)
     upper: dict[str, Array] = field(default_factory=dict)
+    unknowns: dict[str, Array] = field(default_factory=dict)
 
     def take(self, engine: Engine, piece: slice, keep: Collection[str] | None) -> None:
         wanted = (
@@ -216,6 +228,9 @@ class _Joined:
             self._put(self.lower, name, low, piece, np.nan)
             self._put(self.upper, name, high, piece, np.nan)
             self._put(self.jumps, name, np.isfinite(low), piece, False)
+        if keep is None or UNKNOWNS in keep:
+            for number, row in enumerate(engine.unknowns()):
+                self._put(self.unknowns, f"{number}", row, piece, np.nan)
 
     def _put(self, place: dict[str, Array], name: str, value: Array, piece: slice, absent: float) -> None:
         if name not in place:
@@ -236,6 +251,7 @@ class _Joined:
             self._shaped(self.marks["converged"]),
             {name: self._shaped(value) for name, value in self.jumps.items()},
             sides,
+            np.stack(list(self.unknowns.values())) if self.unknowns else None,
         )
 
     def _shaped(self, value: Array) -> Array:
@@ -336,7 +352,7 @@ class Engine:
 
     # -- the whole way ------------------------------------------------------------------------------
 
-    def solve(self, thorough: bool = True) -> None:
+    def solve(self, thorough: bool = True, start: Array | None = None) -> None:
         """Close the circuit and evaluate every step at the answer, into ``values``."""
         run(self.chain.steps, self.values)
         self._clean_deposits()
@@ -348,7 +364,7 @@ class Engine:
             from calcbook.chain.closing import FEW_PASSES, MAXIMUM_PASSES, close
 
             self._fix()
-            close(self, MAXIMUM_PASSES if thorough else FEW_PASSES)
+            close(self, MAXIMUM_PASSES if thorough else FEW_PASSES, start)
         self.finish()
         if self.chain.has_temperatures:
             self._bracket_what_is_open(thorough)
@@ -366,6 +382,12 @@ class Engine:
 
         self.converged[open_samples] = bracket(self, open_samples)
         self.finish()
+
+    def unknowns(self) -> list[Array]:
+        """Heat flow and drops of every sample, NaN where it is open; none where no temperatures are known."""
+        if not self.chain.has_temperatures:
+            return []
+        return [np.where(self.converged, row, np.nan) for row in (self.flow, *self.drops)]
 
     def full(self, name: str) -> Array:
         """A figure for every sample."""

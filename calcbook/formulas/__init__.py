@@ -10,7 +10,7 @@ unit, a card or a file, print, or let one sample's value depend on another's.
 
 from calcbook.formulas.derivatives import partial
 from calcbook.formulas.dimensions import DIMENSIONLESS, Dimension, dimension, dimension_text
-from calcbook.formulas.evaluation import evaluate, evaluate_quietly
+from calcbook.formulas.evaluation import evaluate, evaluate_quietly, evaluate_with_slopes
 from calcbook.formulas.figures import number_text, parse_number
 from calcbook.formulas.grammar import parse_expression, parse_relation, parse_written
 from calcbook.formulas.nodes import (
@@ -69,6 +69,7 @@ __all__ = [
     "dimension_text",
     "evaluate",
     "evaluate_quietly",
+    "evaluate_with_slopes",
     "number_text",
     "parse_expression",
     "parse_number",

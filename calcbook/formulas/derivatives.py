@@ -89,8 +89,9 @@ def _call(node: Call, symbol: str) -> Node:
     if name == "mean":
         column, first, second = args
         _refuse_dependence(node, column, symbol)
-        by_first = multiplied(Call("mean_slope", (column, first, second)), partial(first, symbol))
-        by_second = multiplied(Call("mean_slope", (column, second, first)), partial(second, symbol))
+        # The mean itself comes along: it is the same from either end, and is worked out once.
+        by_first = multiplied(Call("mean_slope", (column, first, second, node)), partial(first, symbol))
+        by_second = multiplied(Call("mean_slope", (column, second, first, node)), partial(second, symbol))
         return added(by_first, by_second)
     if name not in _OUTER:
         raise _unknown(node, symbol)

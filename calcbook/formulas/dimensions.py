@@ -200,7 +200,7 @@ def _call(node: Call, dimensions: Mapping[str, Dimension]) -> Dimension | None:
         return DIMENSIONLESS
     if node.name in ("mean", "mean_slope"):
         column = _found(args[0], dimensions) or DIMENSIONLESS
-        between = _equal(list(args[1:]), dimensions, "a mean joins") or DIMENSIONLESS
+        between = _equal(list(args[1:3]), dimensions, "a mean joins") or DIMENSIONLESS
         return column if node.name == "mean" else _combined(column, between, Fraction(-1))
     for argument in args:
         _plain(argument, dimensions, f"the argument of {node.name}")

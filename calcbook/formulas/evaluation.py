@@ -13,6 +13,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from calcbook.formulas.derivatives import partial
 from calcbook.formulas.functions import implementation
 from calcbook.formulas.nodes import (
     CONSTANTS,
@@ -45,6 +46,7 @@ class _Frame:
 
 
 _Step = Callable[[_Frame], Any]
+_Row = Callable[[_Frame], list[Any]]
 
 _OPERATIONS: dict[str, Callable[..., Any]] = {
     "+": np.add,
@@ -86,8 +88,35 @@ def evaluate_quietly(
         frame = _Frame({name: _array(values[names[name]]) for name in symbols})
     result = step(frame)
     array: NDArray[Any] = np.asarray(result, dtype=kind)
-    if may_borrow and (not array.flags.writeable or any(array is value for value in frame.values.values())):
+    return _own(array, frame) if may_borrow else array
+
+
+def evaluate_with_slopes(
+    relation: Relation | Node, wanted: tuple[str, ...], values: Mapping[str, Any], names: Mapping[str, str]
+) -> tuple[NDArray[Any], list[NDArray[Any]]]:
+    """The value of a relation and its partial derivatives by the ``wanted`` symbols, worked out together.
+
+    To the bits of ``evaluate_quietly`` of each; what they have in common is worked out once, and each branch of
+    a condition once for the samples that choose it. Arguments as there.
+    """
+    tree = tree_of(relation)
+    key = (evaluate_with_slopes, wanted)
+    row: _Row | None = tree.memory.get(key)
+    if row is None:
+        nodes = (tree, *(partial(tree, symbol) for symbol in wanted))
+        row = tree.memory[key] = _compile_row(nodes, _repeated(nodes))
+    frame = _Frame({name: _array(values[names[name]]) for name in tree.symbols})
+    value, *slopes = [_own(np.asarray(result, dtype=np.float64), frame) for result in row(frame)]
+    return value, slopes
+
+
+def _own(array: NDArray[Any], frame: _Frame) -> NDArray[Any]:
+    """A result that is not a value or a constant as it was handed in: such a one is copied."""
+    if not array.flags.writeable:
         return array.copy()
+    for value in frame.values.values():
+        if array is value:
+            return array.copy()
     return array
 
 
@@ -118,11 +147,17 @@ def _array(value: Any) -> Any:
 def _compiled(tree: Node) -> _Step:
     step = tree.memory.get(_compiled)
     if step is None:
-        counts = Counter(node for node in walk(tree) if isinstance(node, Binary | Call | Conditional))
-        often: list[Node] = [node for node, count in counts.items() if count > 1]
-        repeated = {node: slot for slot, node in enumerate(often)}
-        step = tree.memory[_compiled] = _compile(tree, repeated)
+        step = tree.memory[_compiled] = _compile(tree, _repeated((tree,)))
     return step
+
+
+def _repeated(trees: tuple[Node, ...]) -> dict[Node, int]:
+    """The parts that occur more than once in some trees, numbered."""
+    counts = Counter(
+        node for tree in trees for node in walk(tree) if isinstance(node, Binary | Call | Conditional)
+    )
+    often: list[Node] = [node for node, count in counts.items() if count > 1]
+    return {node: slot for slot, node in enumerate(often)}
 
 
 def _compile(node: Node, repeated: dict[Node, int]) -> _Step:
@@ -242,20 +277,16 @@ def _compare_step(first: _Step, rest: list[tuple[str, _Step]]) -> _Step:
     return compare
 
 
-def _truth_compiled(node: Node) -> _Step:
-    return _compiled(node) if is_truth(node) else _compile_truth(node, {})
-
-
 def _logic_step(op: str, parts: tuple[Node, ...], repeated: dict[Node, int]) -> _Step:
     first = _compile_truth(parts[0], repeated)
-    later = [(_truth_compiled(part), part.symbols) for part in parts[1:]]
+    later = [_Branch((part,), (_compile_truth(part, repeated),)) for part in parts[1:]]
     settled_by = op == "or"
+    settled = _Branch((), (_fixed(settled_by),))
 
     def logic(frame: _Frame) -> Any:
         result: Any = np.asarray(first(frame))
-        for step, symbols in later:
-            chosen = np.not_equal(result, settled_by)
-            result = _merge(frame, chosen, (step, symbols), (_fixed(settled_by), ()), bool)
+        for branch in later:
+            (result,) = _merge(frame, np.not_equal(result, settled_by), branch, settled, bool)
         return result
 
     return logic
@@ -263,37 +294,77 @@ def _logic_step(op: str, parts: tuple[Node, ...], repeated: dict[Node, int]) -> 
 
 def _conditional_step(condition: Node, yes: Node, no: Node, repeated: dict[Node, int]) -> _Step:
     test = _compile_truth(condition, repeated)
-    kind = bool if is_truth(yes) or is_truth(no) else float
-    compiled = _truth_compiled if kind is bool else _compiled
-    branches = [(compiled(part), part.symbols) for part in (yes, no)]
+    is_true = is_truth(yes) or is_truth(no)
+    compile_part = _compile_truth if is_true else _compile
+    if_true, if_false = (_Branch((part,), (compile_part(part, repeated),)) for part in (yes, no))
+    kind = bool if is_true else float
 
     def choose(frame: _Frame) -> Any:
-        return _merge(frame, np.asarray(test(frame)), branches[0], branches[1], kind)
+        return _merge(frame, np.asarray(test(frame)), if_true, if_false, kind)[0]
 
     return choose
 
 
-_Branch = tuple[_Step, tuple[str, ...]]
+def _compile_row(nodes: tuple[Node, ...], repeated: dict[Node, int]) -> _Row:
+    """Several nodes in one go; where the first is a choice, the others are parted with it."""
+    first = nodes[0]
+    if not isinstance(first, Conditional):
+        steps = [_compile(node, repeated) for node in nodes]
+        return lambda frame: [step(frame) for step in steps]
+    parted = [
+        (node.yes, node.no)
+        if isinstance(node, Conditional) and node.condition == first.condition
+        else (node, node)
+        for node in nodes
+    ]
+    test = _compile_truth(first.condition, repeated)
+    yes, no = (_Branch(side, row=_compile_row(side, repeated)) for side in zip(*parted, strict=True))
+    return lambda frame: _merge(frame, np.asarray(test(frame)), yes, no, float)
 
 
-def _merge(frame: _Frame, chosen: NDArray[Any], yes: _Branch, no: _Branch, kind: type) -> Any:
+class _Branch:
+    """One side of a choice: a row of figures, and the symbols that they take."""
+
+    __slots__ = ("row", "symbols")
+
+    def __init__(self, nodes: tuple[Node, ...], steps: tuple[_Step, ...] = (), row: _Row | None = None):
+        self.symbols = tuple(dict.fromkeys(name for node in nodes for name in node.symbols))
+        self.row: _Row = row or (lambda frame: [step(frame) for step in steps])
+
+
+def _merge(frame: _Frame, chosen: NDArray[Any], yes: _Branch, no: _Branch, kind: type) -> list[Any]:
     """Each branch for the samples that choose it; ``chosen`` says which take ``yes``."""
     if chosen.ndim == 0:
-        return (yes if chosen else no)[0](_Frame(frame.values))
+        return (yes if chosen else no).row(frame)
+    some = chosen.any()
+    if not some or chosen.all():
+        # All take one branch: nothing is taken apart, and what it shares with others is not worked out again.
+        return [_laid_out(figure, chosen.shape, kind) for figure in (yes if some else no).row(frame)]
     shape = np.broadcast_shapes(
         chosen.shape,
-        *(np.shape(frame.values[name]) for _, names in (yes, no) for name in names if _is_array(frame, name)),
+        *(
+            np.shape(frame.values[name])
+            for branch in (yes, no)
+            for name in branch.symbols
+            if isinstance(frame.values[name], np.ndarray)
+        ),
     )
     chosen = np.broadcast_to(chosen, shape)
-    result: NDArray[Any] = np.empty(shape, dtype=kind)
-    for (step, names), mask in ((yes, chosen), (no, ~chosen)):
-        if mask.any():
-            result[mask] = step(_Frame({name: _samples(frame.values[name], mask) for name in names}))
-    return result
+    results: list[NDArray[Any]] = []
+    for branch, mask in ((yes, chosen), (no, ~chosen)):
+        part = _Frame({name: _samples(frame.values[name], mask) for name in branch.symbols})
+        found = branch.row(part)
+        results = results or [np.empty(shape, dtype=kind) for _ in found]
+        for result, figures in zip(results, found, strict=True):
+            result[mask] = figures
+    return results
 
 
-def _is_array(frame: _Frame, name: str) -> bool:
-    return isinstance(frame.values[name], np.ndarray)
+def _laid_out(figure: Any, shape: tuple[int, ...], kind: type) -> Any:
+    """A figure for every sample of a choice."""
+    if figure.shape == shape:
+        return figure
+    return np.array(np.broadcast_to(figure, np.broadcast_shapes(figure.shape, shape)), dtype=kind)
 
 
 def _samples(value: Any, mask: NDArray[Any]) -> Any:

@@ -28,7 +28,7 @@ INTERNAL: dict[str, tuple[int, int]] = {
     "sign": (1, 1),
     "i2e": (1, 1),
     "gamma_p_density": (2, 2),
-    "mean_slope": (3, 3),
+    "mean_slope": (4, 4),
 }
 # First argument is a table column with its own methods, not an array of numbers.
 TAKES_COLUMN = ("mean", "mean_slope")
@@ -91,10 +91,10 @@ def _mean(column: Any, first: Any, second: Any) -> Any:
     return column.mean(first, second)
 
 
-def _mean_slope(column: Any, first: Any, second: Any) -> Any:
+def _mean_slope(column: Any, first: Any, second: Any, mean: Any) -> Any:
     """The derivative of the mean of a column between two temperatures by the first of them."""
     difference = second - first
     close = np.abs(difference) <= _SAME_TEMPERATURE * np.maximum(np.abs(first), np.abs(second))
     apart = np.where(close, 1.0, difference)
-    quotient = (column.mean(first, second) - column.value(first)) / apart
+    quotient = (mean - column.value(first)) / apart
     return np.where(close, column.slope(0.5 * (first + second)) / 2.0, quotient)

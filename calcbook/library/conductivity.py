@@ -37,9 +37,7 @@ class ConductivityTable:
         if len(self.temperatures) < 2:
             return np.zeros_like(np.asarray(temperature, dtype=float))
         gradients = np.diff(self.conductivities) / np.diff(self.temperatures)
-        place = np.clip(
-            np.searchsorted(self.temperatures, temperature, side="right") - 1, 0, len(gradients) - 1
-        )
+        place = np.minimum(np.maximum(self._piece(temperature) - 1, 0), len(gradients) - 1)
         low, high = self.limits
         inside = (np.asarray(temperature) >= low) & (np.asarray(temperature) <= high)
         return np.where(inside, gradients[place], 0.0)
@@ -62,12 +60,11 @@ class ConductivityTable:
 
     def _integral_to(self, temperature: Array) -> Array:
         low, high = self.limits
-        held = np.clip(temperature, low, high)
-        place = np.clip(
-            np.searchsorted(self.temperatures, held, side="right") - 1, 0, max(len(self.temperatures) - 2, 0)
-        )
-        start = self.temperatures[place]
-        inside = self._integral[place] + 0.5 * (self.value(start) + self.value(held)) * (held - start)
+        held = np.minimum(np.maximum(temperature, low), high)
+        place = self._piece(held) - 1
+        place = np.minimum(np.maximum(place, 0), max(len(self.temperatures) - 2, 0))
+        start, at_start = self.temperatures[place], self.conductivities[place]
+        inside = self._integral[place] + 0.5 * (at_start + self.value(held)) * (held - start)
         below = (np.minimum(temperature, low) - low) * self.conductivities[0]
         above = (np.maximum(temperature, high) - high) * self.conductivities[-1]
         return inside + below + above

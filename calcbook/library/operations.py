@@ -13,7 +13,16 @@ from typing import Protocol
 
 import numpy as np
 
-from calcbook.formulas import Binary, Compare, Node, Relation, evaluate, evaluate_quietly, partial
+from calcbook.formulas import (
+    Binary,
+    Compare,
+    Node,
+    Relation,
+    evaluate,
+    evaluate_quietly,
+    evaluate_with_slopes,
+    partial,
+)
 from calcbook.library.cards import Solve, Sum, Table
 
 Array = np.ndarray
@@ -290,32 +299,28 @@ def run(steps: Sequence[Step | Together], values: dict[str, Array], slopes: Slop
                 step.run(values, slopes)
                 continue
             operation = step.operation
-            if isinstance(operation, RelationOperation):
-                value = evaluate_quietly(operation.relation, values, step.inputs)
+            moving = _moving(step, slopes)
+            if not isinstance(operation, RelationOperation):
+                arguments = {local: values[name] for local, name in step.inputs.items()}
+                value = operation.value(arguments)
+                local_slopes = operation.slopes(arguments, value, moving) if moving else {}
+            elif moving:
+                value, found = evaluate_with_slopes(operation.relation, moving, values, step.inputs)
+                local_slopes = dict(zip(moving, found, strict=True))
             else:
-                value = operation.value({local: values[name] for local, name in step.inputs.items()})
+                value = evaluate_quietly(operation.relation, values, step.inputs)
             values[step.name] = value
-            if slopes is not None:
-                carried = _carried(step, values, value, slopes)
+            if moving and slopes is not None:
+                carried = chained(step.inputs, local_slopes, slopes)
                 if carried:
                     slopes[step.name] = carried
 
 
-def _carried(step: Step, values: Mapping[str, Array], value: Array, slopes: Slopes) -> dict[str, Array]:
-    """The chain rule for one step: derivative with respect to every seed that its inputs depend on."""
-    moving = [local for local, name in step.inputs.items() if name in slopes]
-    if not moving:
-        return {}
-    operation = step.operation
-    if isinstance(operation, RelationOperation):
-        local_slopes = {
-            local: evaluate_quietly(partial(operation.relation, local), values, step.inputs)
-            for local in moving
-        }
-    else:
-        arguments = {local: values[name] for local, name in step.inputs.items()}
-        local_slopes = operation.slopes(arguments, value, moving)
-    return chained(step.inputs, local_slopes, slopes)
+def _moving(step: Step, slopes: Slopes | None) -> tuple[str, ...]:
+    """The local symbols of a step that depend on a seed."""
+    if slopes is None:
+        return ()
+    return tuple(local for local, name in step.inputs.items() if name in slopes)
 
 
 def chained(inputs: Mapping[str, str], local_slopes: Mapping[str, Array], slopes: Slopes) -> dict[str, Array]:
@@ -330,6 +335,8 @@ def chained(inputs: Mapping[str, str], local_slopes: Mapping[str, Array], slopes
 
 def _product(outer: Array, inner: Array) -> Array:
     """A product in which a zero outer slope stays zero, also where the inner one is infinite."""
+    if inner.ndim == 0 and inner == 1.0:
+        return outer
     product = outer * inner
     if np.isfinite(product).all():
         return product

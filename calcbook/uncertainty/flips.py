@@ -139,6 +139,7 @@ class _Table:
     missing: Array = field(default_factory=lambda: np.empty(0, dtype=int))
     reasons: list[str] = field(default_factory=lambda: [""])
     margins: dict[int, Array] = field(default_factory=dict)
+    unknowns: Array | None = None
     limit_rows: Array = field(default_factory=lambda: np.empty(0, dtype=bool))
     stop_rows: Array = field(default_factory=lambda: np.empty(0, dtype=bool))
 
@@ -161,9 +162,22 @@ class _Table:
         names = {reason: self._reason(reason) for reason in samples.reasons}
         renamed = np.array([names[reason] for reason in samples.reasons])
         self.missing = np.concatenate([self.missing, renamed[samples.missing]])
+        self.unknowns = self._more_unknowns(samples, start)
         self.batches.append(samples)
         self.margins.clear()
         return start
+
+    def _more_unknowns(self, samples: Samples, start: int) -> Array | None:
+        """What the circuits were closed with, by condition, of every sample; NaN where they were not."""
+        added, known = samples.unknowns, self.unknowns
+        if added is None and known is None:
+            return None
+        shape = (added if added is not None else known).shape[:2]  # type: ignore[union-attr]
+        if added is None:
+            added = np.full((*shape, len(samples.missing)), np.nan)
+        if known is None:
+            known = np.full((*shape, start), np.nan)
+        return np.concatenate([known, added], axis=2)
 
     def _reason(self, reason: str) -> int:
         if reason not in self.reasons:
@@ -279,8 +293,34 @@ class _Search:
             start += len(figures)
         if all(value.ndim == 0 for value in inputs.values()):
             inputs = {name: np.full(len(case_of), value) for name, value in inputs.items()}
-        samples = evaluate_samples(self.chain, inputs, self.names, case_of, self.phases, self.directions)
+        near = self._near(part, ahead)
+        samples = evaluate_samples(
+            self.chain, inputs, self.names, case_of, self.phases, self.directions, near
+        )
         return self.table.takes(samples) + ahead
+
+    def _near(self, part: list[tuple[_Line, tuple[float, ...]]], ahead: int) -> Array | None:
+        """Between the neighbours of every figure on its line: where its circuit is likely to close.
+
+        NaN beyond the last sample with an answer, where its neighbour tells little.
+        """
+        unknowns = self.table.unknowns
+        if unknowns is None:
+            return None
+        inside, outside, weights = [], [], []
+        for line, figures in part:
+            distances = np.abs(line.figures - line.now)
+            wanted = np.abs(np.array(figures) - line.now)
+            after = np.searchsorted(distances, wanted)
+            near, far = np.maximum(after - 1, 0), np.minimum(after, len(distances) - 1)
+            width = np.where(far > near, distances[far] - distances[near], np.nan)
+            inside.append(line.places[near])
+            outside.append(line.places[far])
+            weights.append((wanted - distances[near]) / width)
+        found = np.full((*unknowns.shape[:2], ahead), np.nan)
+        share = np.concatenate(weights)
+        first, second = unknowns[:, :, np.concatenate(inside)], unknowns[:, :, np.concatenate(outside)]
+        return np.concatenate([found, first + share * (second - first)], axis=2)
 
     # -- brackets -----------------------------------------------------------------------------------
 

@@ -17,6 +17,7 @@ from small_calculations import (
     insulated_pipe,
 )
 
+from calcbook.chain import closing
 from calcbook.chain import solve as engine
 from calcbook.chain.solve import solve
 from calcbook.interface import solve_file
@@ -213,3 +214,55 @@ def test_samples_of_few_and_of_many_pressures_are_those_asked_alone(states: int,
     for place in (0, 1, 44, 89):
         alone = operation.value({"T": np.asarray(temperature[place]), "p": np.asarray(pressure[place])})
         assert found[place] == alone
+
+
+@pytest.mark.parametrize("name", ["cooler", "oil", "insulated pipe, cold sky", "plane wall"])
+def test_a_near_start_leads_to_the_same_answer_in_fewer_passes(tmp_path, name, monkeypatch):
+    chain = chain_of(tmp_path, BODIES[name])
+    inputs = varied(chain, 40, 5)
+    usual = solve(chain, inputs, "service")
+    others = solve(chain, varied(chain, 40, 6), "service").unknowns
+    moved: list[int] = []
+    move = closing._Passes._move
+
+    def counted(self, places, fresh):
+        moved.append(len(places))
+        move(self, places, fresh)
+
+    monkeypatch.setattr(closing._Passes, "_move", counted)
+    again = solve(chain, inputs, "service", start=usual.unknowns)
+    at_once, moved[:] = sum(moved), []
+    near = solve(chain, inputs, "service", start=others)
+    moved[:] = []
+    solve(chain, inputs, "service")
+    assert at_once < sum(moved) / 2
+    for found in (again, near):
+        np.testing.assert_array_equal(found.converged, usual.converged)
+        # Each answer is known to some hundred roundings of the temperatures that its drops are taken from.
+        np.testing.assert_allclose(
+            found.figure(chain.results["U"]), usual.figure(chain.results["U"]), rtol=1e-11
+        )
+
+
+def test_a_start_that_cannot_be_one_is_not_taken(tmp_path):
+    chain = chain_of(tmp_path, COOLER)
+    inputs = varied(chain, 4, 7)
+    usual = solve(chain, inputs, "service")
+    start = np.array(usual.unknowns)
+    start[:, 0] = np.nan
+    start[:, 1] *= -1.0
+    start[0, 2] = 0.0
+    found = solve(chain, inputs, "service", start=start)
+    assert found.converged.all()
+    for row in (0, 1, 2):
+        assert found.figure(chain.results["U"])[row] == usual.figure(chain.results["U"])[row]
+
+
+def test_a_sample_without_an_answer_gives_no_start(tmp_path):
+    chain = chain_of(tmp_path, COOLER)
+    inputs = varied(chain, 3, 8)
+    flow = next(name for name in inputs if name.endswith("m_hot"))
+    inputs[flow] = np.array([inputs[flow][0], np.nan, inputs[flow][2]])
+    unknowns = solve(chain, inputs, "service").unknowns
+    assert np.isnan(unknowns[:, 1]).all()
+    assert np.isfinite(unknowns[:, [0, 2]]).all()

@@ -9,7 +9,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 from relation_trees import NAMES, trees
 
-from calcbook.formulas import evaluate, parse_expression, parse_relation
+from calcbook.formulas import evaluate, evaluate_with_slopes, parse_expression, parse_relation, partial
 
 # One relation per function and operation, with the interval its argument is drawn from.
 BIT_RELATIONS = [
@@ -92,6 +92,38 @@ def test_special_functions_against_tables():
     assert float(evaluate(parse_expression("gamma_p(1, x)"), {"x": 0.7})) == pytest.approx(
         -math.expm1(-0.7), rel=1e-14
     )
+
+
+@given(trees, st.integers(0, 2**32 - 1), st.sampled_from(["mixed", "alike", "one"]))
+def test_a_value_with_its_slopes_has_the_bits_of_each_alone(tree, seed, samples):
+    # Samples that part at a condition, samples that all take one side of it, and a single one.
+    random = np.random.default_rng(seed)
+    names = [*NAMES, "ideal.a_1"]
+    values = {name: random.choice([0.0, 0.5, 2.0, -1.0, random.normal()], 5) for name in names}
+    values |= {"heated": random.random(5) > 0.5, "liquid": True}
+    if samples != "mixed":
+        shape = (5,) if samples == "alike" else ()
+        values = {name: np.full(shape, np.broadcast_to(value, (5,))[0]) for name, value in values.items()}
+    wanted = tuple(name for name in tree.symbols if name in ("x", "y", "Re"))
+    with np.errstate(all="ignore"):
+        value, slopes = evaluate_with_slopes(tree, wanted, values, {name: name for name in tree.symbols})
+    assert np.array_equal(value, evaluate(tree, values), equal_nan=True)
+    for symbol, slope in zip(wanted, slopes, strict=True):
+        alone = evaluate(partial(tree, symbol), values)
+        assert np.array_equal(*np.broadcast_arrays(slope, alone), equal_nan=True)
+
+
+def test_what_value_and_slopes_have_in_common_is_worked_out_once():
+    spy = _Spy()
+    relation = parse_expression("mean(wall.k, x, y)/2 if x > 2 else x")
+    names = {name: name for name in relation.symbols}
+    at = {"x": np.array([1.0, 4.0, 6.0]), "y": np.array([2.0, 5.0, 9.0]), "wall.k": spy}
+    value, (by_x, by_y) = evaluate_with_slopes(relation, ("x", "y"), at, names)
+    assert spy.asked == [2]
+    # The mean of this column is the middle of its ends, without a value of its own: (m - 0)/(x - y) and back.
+    assert value.tolist() == [1.0, 2.25, 3.75]
+    assert by_x == pytest.approx([1.0, 2.25, 1.25])
+    assert by_y == pytest.approx([0.0, -2.25, -1.25])
 
 
 @pytest.mark.parametrize("text", ["1/x if x > 0 else 0", "x > 0 and 1/x > 1", "not (x <= 0 or 1/x <= 1)"])
