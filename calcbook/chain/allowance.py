@@ -2,16 +2,16 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Mapping
 
 import numpy as np
 
-from calcbook.chain.solve import Solution, solve
+from calcbook.chain.solve import UNKNOWNS, Solution, solve
 from calcbook.chain.types import SERVICE, Chain, Layer
 from calcbook.chain.variants import with_figures
 
 Array = np.ndarray
+LARGEST_ALLOWANCE = "largest_allowance "
 MAXIMUM_PASSES = 40
 # The resistance that remains to be found, relative to that which the duty allows in all.
 AGREEMENT = 1e-13
@@ -26,42 +26,72 @@ def fouling_figures(chain: Chain) -> dict[str, tuple[Layer, ...]]:
     return shared
 
 
-def largest_allowances(chain: Chain, inputs: Mapping[str, Array], service: Solution) -> dict[str, float]:
-    """Largest resistance on its own surface by term name, the others as stated, m² K/W.
+def largest_allowances(
+    chain: Chain, inputs: Mapping[str, Array], service: Solution, thorough: bool = True
+) -> dict[str, Array]:
+    """Largest resistance on its own surface by term name, the others as stated, m² K/W, in the samples' shape.
 
     Terms that share a figure are joined by a comma. NaN where the duty is not carried even without the term.
+    ``service`` is the solution of ``inputs``, which leave nothing open; ``thorough`` is that of ``solve``.
     """
     if "U required" not in chain.results:
         return {}
     return {
-        ", ".join(layer.name for layer in layers): _largest(chain, inputs, service, figure, layers)
+        ", ".join(layer.name for layer in layers): _largest(chain, inputs, service, figure, layers, thorough)
         for figure, layers in fouling_figures(chain).items()
     }
 
 
 def _largest(
-    chain: Chain, inputs: Mapping[str, Array], service: Solution, figure: str, layers: tuple[Layer, ...]
-) -> float:
+    chain: Chain,
+    inputs: Mapping[str, Array],
+    service: Solution,
+    figure: str,
+    layers: tuple[Layer, ...],
+    thorough: bool,
+) -> Array:
     """The figure at which U in service is what the duty asks for.
 
     Each pass gives the resistance that is still missing to the term; the films move little, so the passes close
-    fast.
+    fast. A sample stops at its own answer.
     """
-    needed = service.number(chain.results["U required"])
-    basis = service.number(chain.surfaces[chain.basis].area)
+    shape = service.converged.shape
+    size = service.converged.size
+
+    def row(name: str) -> Array:
+        return np.broadcast_to(service.figure(name).ravel(), (size,))
+
+    needed, basis = row(chain.results["U required"]), row(chain.surfaces[chain.basis].area)
     # A rise of the figure by 1 raises the resistance on the basis area by this much.
-    weight = sum(basis / service.number(chain.surfaces[layer.surface].area) for layer in layers)
-    resistance, there = service.number(figure), service.number(chain.results["U"])
-    if not needed > 0.0 or not there > 0.0:
-        return math.nan
+    weight = sum((basis / row(chain.surfaces[layer.surface].area) for layer in layers), np.zeros(size))
+    resistance, there = row(figure), row(chain.results["U"])
+    result = np.full(size, np.nan)
+    with np.errstate(all="ignore"):
+        active = np.flatnonzero((needed > 0.0) & (there > 0.0))
+    unknowns = None if service.unknowns is None else service.unknowns[:, active]
+    resistance, there = resistance[active], there[active]
     for _ in range(MAXIMUM_PASSES):
-        missing = (1.0 / needed - 1.0 / there) / weight
-        if abs(missing) * weight * needed <= AGREEMENT:
-            return resistance
-        resistance = max(resistance + missing, 0.0)
-        one, given = with_figures(chain, inputs, {figure: np.asarray(resistance)})
-        solution = solve(one, given, SERVICE, keep=(chain.results["U"],))
-        there = solution.number(chain.results["U"])
-        if not math.isfinite(there) or (resistance == 0.0 and there < needed):
-            return math.nan
-    return math.nan
+        missing = (1.0 / needed[active] - 1.0 / there) / weight[active]
+        agreed = np.abs(missing) * weight[active] * needed[active] <= AGREEMENT
+        result[active[agreed]] = resistance[agreed]
+        active = active[~agreed]
+        if not len(active):
+            break
+        resistance = np.maximum(resistance + missing, 0.0)[~agreed]
+        part = {name: value[active] if np.ndim(value) else value for name, value in inputs.items()}
+        one, given = with_figures(chain, part, {figure: resistance})
+        solution = solve(
+            one,
+            given,
+            SERVICE,
+            keep=(chain.results["U"], UNKNOWNS),
+            thorough=thorough,
+            start=None if unknowns is None else unknowns[:, ~agreed],
+        )
+        there = solution.figure(chain.results["U"])
+        going_on = np.isfinite(there) & ((resistance > 0.0) | (there >= needed[active]))
+        active, resistance, there = active[going_on], resistance[going_on], there[going_on]
+        unknowns = None if solution.unknowns is None else solution.unknowns[:, going_on]
+        if not len(active):
+            break
+    return result.reshape(shape)

@@ -10,14 +10,14 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from calcbook.calcfile.calculation import Criterion
-from calcbook.chain.allowance import largest_allowances
+from calcbook.chain.allowance import LARGEST_ALLOWANCE, largest_allowances
 from calcbook.chain.alternatives import alternatives, needs_temperatures
 from calcbook.chain.checks import apply_acceptances, evaluate_check, state_of_check
 from calcbook.chain.circuit import branch_coefficient
 from calcbook.chain.completing import completed
 from calcbook.chain.duty import OWNER as DUTY
 from calcbook.chain.duty import duty_results, is_of_duty
-from calcbook.chain.ends import end_checks, end_states, end_surfaces
+from calcbook.chain.ends import EndState, closed_ends, end_checks, end_states, end_surfaces
 from calcbook.chain.films import SATURATED_SIDES
 from calcbook.chain.findings import (
     assumptions_of,
@@ -92,6 +92,11 @@ class NotConverged(Exception):
         self.number, self.case, self.condition = number, case, condition
         where = f"case {case}, " if case else ""
         super().__init__(f"{number}: {where}{condition} did not converge")
+
+
+def is_found_later(name: str) -> bool:
+    """Whether a result is found once from the solved calculation, after its criteria are judged."""
+    return name in LATER or name.startswith(LATER_STARTS)
 
 
 def analyse(chain: Chain, collector: Collector) -> Solved | None:
@@ -170,10 +175,9 @@ class _Analysis:
                     return None
                 raise NotConverged(self.chain.calculation.number, name, condition)
             evaluate_pressure_drops(self.chain, solution)
-        ends = end_states(self.chain, inputs, solutions)
+        ends = closed_ends(end_states(self.chain, inputs, solutions))
         results = self._results(solutions, inputs)
-        kind = vocabulary()["temperature"]
-        results |= {name: Result(name, value, kind, title) for name, value, title in end_surfaces(ends)}
+        results |= _single(surfaces_at_ends(ends))
         checks = (*self._checks(name, solutions), *end_checks(ends, name))
         for check in checks:
             if check.level == "stop" and check.state == "outside":
@@ -257,17 +261,7 @@ class _Analysis:
         self, solutions: Mapping[str, Solution], inputs: Mapping[str, np.ndarray]
     ) -> dict[str, Result]:
         """The named results of a single record, and the largest allowances, which take solutions of their own."""
-        results = {
-            name: Result(name, value, item.kind, item.title)
-            for name, item in self.figures(solutions).items()
-            if math.isfinite(value := float(item.values))
-        }
-        for name, value in largest_allowances(self.chain, inputs, solutions[SERVICE]).items():
-            if math.isfinite(value):
-                title = f"largest resistance of {name} with which the installed area carries the duty"
-                key = f"largest_allowance {name}"
-                results[key] = Result(key, value, vocabulary()["area resistance"], title)
-        return results
+        return _single(self.figures(solutions) | allowance_figures(self.chain, inputs, solutions[SERVICE]))
 
     def figures(self, solutions: Mapping[str, Solution]) -> dict[str, ResultFigures]:
         """Every named result at every sample."""
@@ -689,7 +683,7 @@ class _Analysis:
             result = results.get(criterion.result)
             if result is None:
                 if not case:
-                    later = criterion.result in LATER or criterion.result.startswith(LATER_STARTS)
+                    later = is_found_later(criterion.result)
                     self.collector.add(
                         "result-unknown",
                         criterion.place,
@@ -995,6 +989,26 @@ def result_figures(chain: Chain, solutions: Mapping[str, Solution]) -> dict[str,
     return _Analysis(chain, Collector()).figures(solutions)
 
 
+def surfaces_at_ends(states: tuple[EndState, ...]) -> dict[str, ResultFigures]:
+    """The wetted surfaces at both ends of a unit as named results."""
+    kind = vocabulary()["temperature"]
+    return {name: ResultFigures(values, kind, title) for name, values, title in end_surfaces(states)}
+
+
+def allowance_figures(
+    chain: Chain, inputs: Mapping[str, Array], service: Solution, thorough: bool = True
+) -> dict[str, ResultFigures]:
+    """The largest allowance of every fouling term as named results, found with solutions of their own."""
+    return {
+        LARGEST_ALLOWANCE + name: ResultFigures(
+            values,
+            vocabulary()["area resistance"],
+            f"largest resistance of {name} with which the installed area carries the duty",
+        )
+        for name, values in largest_allowances(chain, inputs, service, thorough).items()
+    }
+
+
 def criterion_figures(
     chain: Chain, solutions: Mapping[str, Solution], results: Mapping[str, ResultFigures]
 ) -> list[CriterionFigures]:
@@ -1022,6 +1036,15 @@ def criterion_met(criterion: Criterion, margin: Array | float) -> Array:
 
 
 # --- small helpers ----------------------------------------------------------------------------------
+
+
+def _single(figures: Mapping[str, ResultFigures]) -> dict[str, Result]:
+    """The named results of a single record; one without a value is left out."""
+    return {
+        name: Result(name, value, item.kind, item.title)
+        for name, item in figures.items()
+        if math.isfinite(value := float(item.values))
+    }
 
 
 def _names(element: Group | Layer) -> set[str]:

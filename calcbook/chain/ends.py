@@ -1,4 +1,4 @@
-"""Both ends of a unit with a duty: its surfaces there, and what the fluid does at the wall."""
+"""Both ends of a unit with a duty: its surfaces there, and what the fluid does at the wall, at every sample."""
 
 from __future__ import annotations
 
@@ -9,8 +9,8 @@ import numpy as np
 
 from calcbook.chain.findings import wall_checks
 from calcbook.chain.outcome import CheckResult
-from calcbook.chain.solve import Solution, solve
-from calcbook.chain.types import Chain
+from calcbook.chain.solve import Solution, conditions_of, solve, solve_both
+from calcbook.chain.types import CONDITIONS, Chain
 from calcbook.chain.variants import with_figures
 
 Array = np.ndarray
@@ -27,54 +27,86 @@ class EndState:
 
 
 def end_states(
-    chain: Chain, inputs: Mapping[str, Array], solutions: Mapping[str, Solution]
+    chain: Chain, inputs: Mapping[str, Array], solutions: Mapping[str, Solution], thorough: bool = True
 ) -> tuple[EndState, ...]:
-    """Both ends in every condition of a single record; empty without a duty or temperatures.
+    """Both ends in every condition, for the samples of the solutions in one row; empty without a duty.
 
-    The hot inlet meets the cold outlet, but in parallel flow the cold inlet. An end at which the circuit does
-    not close is left out.
+    The hot inlet meets the cold outlet, but in parallel flow the cold inlet. ``inputs`` leave nothing open. Where the
+    circuit does not close at an end, its solution has not converged. ``thorough`` is that of ``solve``.
     """
     duty = chain.calculation.duty
     if duty is None or not chain.has_temperatures:
         return ()
+    any_solution = next(iter(solutions.values()))
+    size = any_solution.converged.size
     orders = {"hot": ("inlet", "outlet"), "cold": ("outlet", "inlet")}
     if duty.arrangement == "parallel flow":
         orders["cold"] = orders["hot"]
-    any_solution = next(iter(solutions.values()))
     figures = {
-        chain.streams[side.stream].temperature: np.array(
-            [any_solution.number(chain.results[f"T {name} {end}"]) for end in orders[name]]
+        chain.streams[side.stream].temperature: np.concatenate(
+            [
+                np.broadcast_to(any_solution.figure(chain.results[f"T {name} {end}"]).ravel(), (size,))
+                for end in orders[name]
+            ]
         )
         for name, side in duty.sides.items()
         if f"T {name} mean" in chain.results
     }
-    one, given = with_figures(chain, inputs, figures)
-    found = []
-    for condition in solutions:
-        both = solve(one, given, condition)
-        for number, place in enumerate(PLACES):
-            if both.converged.reshape(-1)[number]:
-                found.append(EndState(one, place, both.sample(number)))
-    return tuple(found)
+    twice = {name: np.tile(value, 2) if np.ndim(value) else value for name, value in inputs.items()}
+    one, given = with_figures(chain, twice, figures)
+    start = _start(solutions)
+    if tuple(solutions) == CONDITIONS:
+        found = conditions_of(solve_both(one, given, thorough, start))
+    else:
+        found = {
+            condition: solve(one, given, condition, thorough=thorough, start=start) for condition in solutions
+        }
+    return tuple(
+        EndState(one, place, solution.part(slice(number * size, (number + 1) * size)))
+        for solution in found.values()
+        for number, place in enumerate(PLACES)
+    )
+
+
+def _start(solutions: Mapping[str, Solution]) -> Array | None:
+    """What the circuits closed with at the mean temperatures, for both ends of each condition."""
+    rows = [solution.unknowns for solution in solutions.values()]
+    known = [row for row in rows if row is not None]
+    return np.concatenate([np.tile(row, 2) for row in known], axis=1) if len(known) == len(rows) else None
+
+
+def closed_ends(states: tuple[EndState, ...]) -> tuple[EndState, ...]:
+    """The ends of a single record at which the circuit closes, each as a solution of its own."""
+    return tuple(
+        replace(state, solution=state.solution.sample(0))
+        for state in states
+        if state.solution.converged.reshape(-1)[0]
+    )
 
 
 def end_checks(states: tuple[EndState, ...], case: str) -> list[CheckResult]:
-    """Against boiling, condensing and freezing at the wall at both ends."""
+    """Against boiling, condensing and freezing at the wall at both ends of a single record."""
     return [
-        replace(check, id=f"{check.id} {state.place}")
+        replace(check, id=id_at(check.id, state))
         for state in states
         for check in wall_checks(state.chain, case, state.solution)
     ]
 
 
-def end_surfaces(states: tuple[EndState, ...]) -> Iterator[tuple[str, float, str]]:
-    """Result name, temperature and title of both wetted surfaces at both ends."""
+def id_at(name: str, state: EndState) -> str:
+    """The id of a limit or result at an end."""
+    return f"{name} {state.place}"
+
+
+def end_surfaces(states: tuple[EndState, ...]) -> Iterator[tuple[str, Array, str]]:
+    """Result name, temperatures (NaN where the circuit does not close) and title of both wetted surfaces there."""
     for state in states:
         condition = state.solution.condition
         for group in (state.chain.inner, state.chain.outer):
             surface = f"{group.side} surface"
+            figures = state.solution.figure(group.surface_temperature)
             yield (
-                f"T {surface} {condition} {state.place}",
-                state.solution.number(group.surface_temperature),
+                id_at(f"T {surface} {condition}", state),
+                np.where(state.solution.converged, figures, np.nan),
                 f"temperature {surface}, {condition}, {state.place}",
             )

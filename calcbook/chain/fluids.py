@@ -217,14 +217,15 @@ class FixedOperation:
 
 
 def _is_liquid(state: FluidAtPressure, temperature: Array) -> Array:
-    """Along one pressure a liquid lies below all else: the coldest and the hottest sample settle most calls."""
-    known = temperature[~np.isnan(temperature)]
-    ends = (
-        {state.phase_at(float(item)) == "liquid" for item in (known.min(), known.max())}
-        if known.size
-        else {False}
-    )
-    if len(ends) == 1:
-        return np.full(temperature.shape, float(*ends))
-    found = [state.phase_at(float(item)) == "liquid" for item in temperature.ravel()]
-    return np.asarray(found, dtype=float).reshape(temperature.shape)
+    """Along one pressure a liquid lies below all else: the hottest that is one settles the others."""
+    different = np.unique(temperature[~np.isnan(temperature)])
+    low, high = 0, len(different)
+    while low < high:
+        middle = (low + high) // 2
+        if state.phase_at(float(different[middle])) == "liquid":
+            low = middle + 1
+        else:
+            high = middle
+    if low == 0:
+        return np.zeros(temperature.shape)
+    return (temperature <= different[low - 1]).astype(float)

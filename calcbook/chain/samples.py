@@ -13,11 +13,14 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from calcbook.calcfile.calculation import Acceptance
+from calcbook.chain.allowance import LARGEST_ALLOWANCE
 from calcbook.chain.analysis import (
     CONTROLLING_SHARE,
     ResultFigures,
+    allowance_figures,
     criterion_figures,
     result_figures,
+    surfaces_at_ends,
 )
 from calcbook.chain.checks import (
     check_margins,
@@ -27,7 +30,15 @@ from calcbook.chain.checks import (
     within_bound,
 )
 from calcbook.chain.completing import completed
-from calcbook.chain.findings import film_steps, known_or_none, stream_phases, stream_states, wall_limits
+from calcbook.chain.ends import EndState, end_states, id_at
+from calcbook.chain.findings import (
+    WallLimit,
+    film_steps,
+    known_or_none,
+    stream_phases,
+    stream_states,
+    wall_limits,
+)
 from calcbook.chain.flips_outcome import CONTROLLING, CRITERION, LIMIT, METHOD
 from calcbook.chain.outcome import CaseOutcome
 from calcbook.chain.pressure import drops, evaluate_pressure_drops, law_choice
@@ -199,13 +210,16 @@ def _solve(
         samples.unknowns[:, :, samples.solved] = both.unknowns.reshape(-1, 2, count).swapaxes(0, 1)
     evaluate_pressure_drops(chain, both)
     solutions = conditions_of(both)
-    samples.results = result_figures(chain, solutions)
+    ends = end_states(chain, inputs, solutions, thorough=False)
+    samples.results = result_figures(chain, solutions) | surfaces_at_ends(ends)
+    if any(name.startswith(LARGEST_ALLOWANCE) for name in _results_asked(chain)):
+        samples.results |= allowance_figures(chain, inputs, solutions[SERVICE], thorough=False)
     verdicts = [
         *_criteria(chain, solutions, samples.results),
         *(
             verdict
             for condition in reversed(CONDITIONS)
-            for verdict in _Limits(chain, solutions[condition], cases, case_of).verdicts()
+            for verdict in _Limits(chain, solutions[condition], cases, case_of, ends).verdicts()
         ),
         *_methods(chain, solutions),
         _controlling(chain, solutions[SERVICE]),
@@ -218,6 +232,13 @@ def _solve(
     for solution in solutions.values():
         open_circuit = ~solution.converged | ~np.isfinite(solution.figure(chain.results["U"]))
         samples.mark(open_circuit, OPEN_CIRCUIT, samples.solved)
+
+
+def _results_asked(chain: Chain) -> Iterator[str]:
+    """The results that the criteria and the sweep of the file name."""
+    yield from (criterion.result for criterion in chain.calculation.acceptance)
+    sweep = chain.calculation.sweep
+    yield from (name for name, _ in sweep.of) if sweep is not None else ()
 
 
 # --- criteria ---------------------------------------------------------------------------------------
@@ -254,9 +275,17 @@ class _Limit:
 class _Limits:
     """The limits of one condition, by id."""
 
-    def __init__(self, chain: Chain, solution: Solution, cases: Sequence[str], case_of: Array):
+    def __init__(
+        self,
+        chain: Chain,
+        solution: Solution,
+        cases: Sequence[str],
+        case_of: Array,
+        ends: Sequence[EndState],
+    ):
         self.chain = chain
         self.solution = solution
+        self.ends = [state for state in ends if state.solution.condition == solution.condition]
         self.cases = cases
         self.case_of = case_of
         self.found: dict[str, _Limit] = {}
@@ -264,12 +293,18 @@ class _Limits:
     def verdicts(self) -> Iterator[Verdicts]:
         self._cards()
         for item in wall_limits(self.chain, self.solution):
-            codes = np.where(item.acts, _CODE_OF_STATE[item.states], NO_VERDICT)
-            self._put(item.id, "range", codes, item.surface, _fixed_margins(item.margin))
+            self._wall(item.id, item, item.acts)
+        for state in self.ends:
+            for item in wall_limits(state.chain, state.solution):
+                self._wall(id_at(item.id, state), item, item.acts & state.solution.converged)
         condition = self.solution.condition
         for name, limit in self.found.items():
             codes = self._with_acceptances(name, limit)
             yield Verdicts(LIMIT, name, condition, LIMIT_WORDS, codes, _joined(limit.margins), limit.level)
+
+    def _wall(self, name: str, item: WallLimit, acts: Array) -> None:
+        codes = np.where(acts, _CODE_OF_STATE[item.states], NO_VERDICT)
+        self._put(name, "range", codes, item.surface, _fixed_margins(item.margin))
 
     def _cards(self) -> None:
         """As in a record: the shared limits, those of each element, those of what each sample chose."""

@@ -9,7 +9,7 @@ in pieces of fixed size, so that the memory for work on the way stays small.
 from __future__ import annotations
 
 from collections.abc import Collection, Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
@@ -68,6 +68,25 @@ class Solution:
     def number(self, name: str) -> float:
         """One figure of a single record."""
         return float(np.asarray(self.values[name]).ravel()[0])
+
+    def part(self, samples: slice) -> Solution:
+        """Some samples of a solution of one row."""
+
+        def cut(figures: Mapping[str, Array]) -> dict[str, Array]:
+            return {
+                name: value[samples] if isinstance(value, np.ndarray) and value.ndim else value
+                for name, value in figures.items()
+            }
+
+        return Solution(
+            self.condition,
+            cut(self.values),
+            cut(self.chosen),
+            self.converged[samples],
+            cut(self.jumps),
+            {name: (low[samples], high[samples]) for name, (low, high) in self.jump_sides.items()},
+            None if self.unknowns is None else self.unknowns[:, samples],
+        )
 
     def sample(self, number: int) -> Solution:
         """One sample as the solution of a single record."""
@@ -165,28 +184,7 @@ def conditions_of(both: Solution) -> dict[str, Solution]:
     """The solutions clean and in service, from one of both."""
     size = both.converged.size // 2
     halves = {CLEAN: slice(0, size), SERVICE: slice(size, 2 * size)}
-    return {condition: _part(both, condition, half) for condition, half in halves.items()}
-
-
-def _part(solution: Solution, condition: str, samples: slice) -> Solution:
-    """Some samples of a solution."""
-
-    def cut(figures: Mapping[str, Array]) -> dict[str, Array]:
-        return {
-            name: value[samples] if isinstance(value, np.ndarray) and value.ndim else value
-            for name, value in figures.items()
-        }
-
-    sides = {name: (low[samples], high[samples]) for name, (low, high) in solution.jump_sides.items()}
-    return Solution(
-        condition,
-        cut(solution.values),
-        cut(solution.chosen),
-        solution.converged[samples],
-        cut(solution.jumps),
-        sides,
-        None if solution.unknowns is None else solution.unknowns[:, samples],
-    )
+    return {condition: replace(both.part(half), condition=condition) for condition, half in halves.items()}
 
 
 def _flat(value: Array, shape: tuple[int, ...]) -> Array:

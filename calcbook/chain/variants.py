@@ -19,6 +19,10 @@ def with_figures(
 
     A step that gave such a figure is dropped, so that what follows from it takes the figure put in.
     """
-    steps = tuple(step for step in chain.steps if step.id not in figures)
-    open_figures = tuple(item for item in chain.open_figures if item.id not in figures)
-    return replace(chain, steps=steps, open_figures=open_figures), {**inputs, **figures}
+    key = (with_figures, tuple(figures))
+    one: Chain | None = chain.memory.get(key)
+    if one is None:
+        steps = tuple(step for step in chain.steps if step.id not in figures)
+        open_figures = tuple(item for item in chain.open_figures if item.id not in figures)
+        one = chain.memory[key] = replace(chain, steps=steps, open_figures=open_figures)
+    return one, {**inputs, **figures}

@@ -6,7 +6,6 @@ with respect to the symbols asked for. Both come from the one text of the card.
 
 from __future__ import annotations
 
-from abc import ABC, abstractmethod
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Protocol
@@ -279,12 +278,12 @@ class Step(Protocol):
 Slopes = dict[str, dict[str, Array]]
 
 
-class Together(ABC):
-    """Steps of the same inputs that are worked out in one go, as their makers know how."""
+class Together:
+    """Steps of the same inputs that are worked out in one go, as the class that inherits knows how."""
 
-    @abstractmethod
     def run(self, values: dict[str, Array], slopes: Slopes | None) -> None:
         """Put the figure of every step into ``values`` and, with ``slopes``, its derivatives there."""
+        raise NotImplementedError
 
 
 def run(steps: Sequence[Step | Together], values: dict[str, Array], slopes: Slopes | None = None) -> None:

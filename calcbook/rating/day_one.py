@@ -14,7 +14,7 @@ import numpy as np
 from calcbook.chain.build import build
 from calcbook.chain.checks import evaluate_check
 from calcbook.chain.completing import completed
-from calcbook.chain.ends import end_checks, end_states
+from calcbook.chain.ends import closed_ends, end_checks, end_states
 from calcbook.chain.findings import wall_checks
 from calcbook.chain.outcome import CheckResult, Solved
 from calcbook.chain.plausible import band_checks
@@ -191,7 +191,7 @@ def _checks(chain: Chain, inputs: Mapping[str, Array], solution: Solution, state
     """Phases at the wall, at the means and at both ends, and figures outside their bands, of the clean unit."""
     phases = [
         *wall_checks(chain, "", solution),
-        *end_checks(end_states(chain, inputs, {CLEAN: solution}), ""),
+        *end_checks(closed_ends(end_states(chain, inputs, {CLEAN: solution})), ""),
     ]
     found = [check for check in phases if check.state != "within"]
     found += [check for check in _ranges(chain, solution) if check.state in ("outside", "not evaluable")]

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from calcbook.calcfile.calculation import Swept
-from calcbook.chain.analysis import ResultFigures, result_figures
+from calcbook.chain.analysis import ResultFigures, is_found_later
 from calcbook.chain.flips_outcome import LIMIT
 from calcbook.chain.outcome import Result, Solved
 from calcbook.chain.samples import BROKEN, Samples, evaluate_samples, phases_of
@@ -73,9 +73,7 @@ def sweep_of(solved: Solved, axes: tuple[Axis, ...], collector: Collector) -> Sw
 def _names(solved: Solved, collector: Collector) -> list[str]:
     """The results asked for, else U and those that the acceptance names."""
     text = solved.chain.calculation.sweep
-    # What is found from the solved calculation (an allowance, an interval) is not there sample by sample.
-    swept = result_figures(solved.chain, solved.base.solutions)
-    known = [name for name in solved.base.results if name in swept]
+    known = [name for name in solved.base.results if not is_found_later(name)]
     if text is None or not text.of:
         named = [criterion.result for criterion in solved.chain.calculation.acceptance]
         return [name for name in dict.fromkeys((*ALWAYS, *named)) if name in known]

@@ -216,6 +216,104 @@ def test_a_chosen_method_flips_at_its_reynolds_number(tmp_path: Path) -> None:
     )
 
 
+# --- both ends of a duty, and the largest allowance ---------------------------------------------------
+
+# Stated coefficients and a stated conductivity: every resistance is as it stands, whatever the temperatures.
+COOLER = """
+    givens:
+      d_i: {value: 16 mm, is: bore, source: test}
+      d_o: {value: 20 mm, is: outside diameter, source: test}
+      L: {value: 5 m, is: length, source: test}
+      N: {value: 120, is: tubes, source: test}
+      m_h: {value: 10 kg/s, is: hot flow, source: test}
+      T_hi: {value: 90 degC, is: hot inlet, source: test}
+      T_ho: {value: 60 degC, is: hot outlet, source: test}
+      T_ci: {value: 25 degC, is: cold inlet, source: test}
+      T_co: {value: 45 degC, is: cold outlet, source: test}
+      m_c: {value: 15 kg/s, is: cold flow, source: test}
+      h_h: {value: 3000 W/(m^2 K), is: hot coefficient, source: test}
+      h_c: {value: 4000 W/(m^2 K), is: cold coefficient, source: test}
+      R_f: {value: 0.0002 m^2 K/W, is: allowance, source: test}
+    streams:
+      hot: {fluid: water, pressure: {value: 6 bara, source: test}, flow: m_h, phase: liquid}
+      cold: {fluid: water, pressure: {value: 0.3 bara, source: test}, flow: m_c, phase: liquid}
+    duty:
+      arrangement: counterflow
+      hot: {stream: hot, inlet: T_hi, outlet: T_ho}
+      cold: {stream: cold, inlet: T_ci, outlet: T_co}
+    geometry: {shape: tube, inside diameter: d_i, outside diameter: d_o, length: L, parallel: N}
+    resistances:
+      - {name: hot film, kind: film, stream: hot, coefficient: h_h, on: inside}
+      - {name: wall, kind: wall, conductivity: {value: 50 W/(m K), source: test}}
+      - {name: deposit, kind: fouling, resistance: R_f, on: outside}
+      - {name: cold film, kind: film, stream: cold, coefficient: h_c, on: outside}
+    report: {U on: outside}
+"""
+
+
+@pytest.mark.usefixtures("without_other_methods")
+def test_a_largest_allowance_flips_where_the_closed_form_says(tmp_path: Path) -> None:
+    criterion = "    acceptance: [{that: largest_allowance deposit >= 0.0005 m^2 K/W, source: test}]\n"
+    solved = solved_of(tmp_path, COOLER + criterion)
+    assert solved.flips is not None
+    required = solved.base.results["U_required"].value
+    whole = solved.base.results["U_clean"].value
+    # Without deposits 1/U_clean; the coefficient of the cold film that leaves 0.0005 of 1/U_required.
+    room = 1.0 / required - 1.0 / whole
+    assert solved.base.results["largest_allowance deposit"].value == pytest.approx(room, rel=1e-9)
+    resistance = 1.0 / 4000.0 + room - 0.0005
+    flip = one(solved.flips, CRITERION, "h_c")
+    assert flip.at == pytest.approx(1.0 / resistance, rel=2e-9)
+    # The allowance itself does not move what could be allowed; all else does.
+    flipped = {item.input.symbol for item in solved.flips.of_kind(CRITERION)}
+    assert "R_f" not in flipped and {"h_h", "h_c", "N", "T_hi", "m_h"} <= flipped
+    for item in solved.flips.of_kind(CRITERION):
+        check_flip(solved.chain, item)
+
+
+@pytest.mark.usefixtures("without_other_methods")
+def test_a_surface_at_an_end_flips_its_criterion_and_boils_there_first(tmp_path: Path) -> None:
+    criterion = (
+        "    acceptance: [{that: T outside surface service at the hot inlet <= 66 degC, source: test}]\n"
+    )
+    solved = solved_of(tmp_path, COOLER + criterion)
+    assert solved.flips is not None
+    surface = solved.base.results["T outside surface service at the hot inlet"].value
+    coefficient = solved.base.results["U_service"].value / 4000.0
+    # q = U (T_hi - T_co) at the end, T_s = T_co + q/h_c: of T_hi so much goes to the surface.
+    flip = one(solved.flips, CRITERION, "T_hi")
+    assert flip.at == pytest.approx(363.15 + (339.15 - surface) / coefficient, abs=1e-6)
+    for item in solved.flips.of_kind(CRITERION):
+        check_flip(solved.chain, item)
+
+
+@pytest.mark.usefixtures("without_other_methods")
+def test_water_boils_at_the_hot_inlet_before_it_does_at_the_mean(tmp_path: Path) -> None:
+    """At 0.3 bar water boils at 69.10 degC (steam tables by IAPWS-IF97)."""
+    body = COOLER.replace(
+        "stream: hot, coefficient: h_h, on: inside", "stream: hot, coefficient: h_h, on: outside"
+    )
+    body = body.replace("stream: cold, coefficient: h_c, on: outside", "stream: cold, situation: inside-tube")
+    # More tubes than the duty takes, so that the area is not what flips first.
+    lines = body.replace("N: {value: 120", "N: {value: 160").splitlines(keepends=True)
+    hot, cold = (
+        next(place for place, line in enumerate(lines) if f"name: {name} film" in line)
+        for name in ("hot", "cold")
+    )
+    lines[hot], lines[cold] = lines[cold], lines[hot]
+    body = "".join(line for line in lines if "h_c:" not in line)
+    solved = solved_of(tmp_path, body)
+    assert solved.flips is not None
+    flip = one(solved.flips, LIMIT, "h_h")
+    assert (flip.id, flip.condition) == ("cold film / wall phase / boils at the hot inlet", "clean")
+    check_flip(solved.chain, flip)
+    outcome, _ = alone(solved.chain, flip, flip.printed)
+    assert outcome is not None
+    at_end = outcome.results["T inside surface clean at the hot inlet"].value - 273.15
+    assert at_end == pytest.approx(69.10, abs=0.01)
+    assert outcome.results["T inside surface clean"].value - 273.15 < 60.0
+
+
 # --- every line of every example ----------------------------------------------------------------------
 
 

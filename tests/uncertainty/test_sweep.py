@@ -148,3 +148,18 @@ def test_a_sweep_changes_no_other_figure(tmp_path: Path) -> None:
     assert plain.sweep is None and "Sweep over" not in record_text(plain)
     assert digest_of(plain).results == digest_of(swept).results
     assert digest_of(plain).meaning != digest_of(swept).meaning
+
+
+def test_surfaces_at_the_ends_and_largest_allowances_are_swept(tmp_path: Path) -> None:
+    from test_flips import COOLER
+
+    names = ("largest_allowance deposit", "T outside surface service at the hot inlet")
+    asked = f"    sweep: {{h_c: {{from: 3000 W/(m^2 K), to: 5000 W/(m^2 K), steps: 3}}, of: [{', '.join(names)}]}}\n"
+    solved = solved_of(tmp_path, COOLER + asked)
+    sweep = sweep_in(solved)
+    for row, coefficient in enumerate((3000, 4000, 5000)):
+        other = solved_of(tmp_path, COOLER.replace("h_c: {value: 4000", f"h_c: {{value: {coefficient}"))
+        for name, result in zip(names, sweep.results, strict=True):
+            # The same circuits, closed from other starts: they agree to the rounding of a temperature.
+            assert result.name == name
+            assert result.values[row] == pytest.approx(other.base.results[name].value, rel=1e-11)
