@@ -10,6 +10,7 @@ from __future__ import annotations
 
 from collections.abc import Collection, Mapping
 from dataclasses import dataclass, field, replace
+from typing import Any
 
 import numpy as np
 
@@ -490,6 +491,9 @@ class Engine:
             return _spread(np.asarray(self.at(plan.wanted, samples), dtype=float), count), {}
         values = {name: self.at(name, samples) for name in plan.outside}
         values.update(given)
+        if len(samples) == 1:
+            # A single figure goes another way through the relations, in which it takes less time.
+            values = {name: _figure(value) for name, value in values.items()}
         slopes: Slopes | None = {name: {name: ONE} for name in given} if wants_slopes else None
         run(plan.following, values, slopes)
         carried = slopes.get(plan.wanted, {}) if slopes is not None else {}
@@ -854,7 +858,14 @@ def _given(group: Group, surface: Array | None, flux: Array | None) -> dict[str,
 
 def _spread(value: Array, shape: tuple[int, ...]) -> Array:
     """A figure for every sample; one that is laid out for them already is itself."""
-    return value if value.shape == shape else np.broadcast_to(value, shape)
+    if value.shape == shape:
+        return value
+    return value.reshape(shape) if shape == (1,) else np.broadcast_to(value, shape)
+
+
+def _figure(value: Any) -> Any:
+    """A row of one sample as a figure without a row."""
+    return value.reshape(()) if isinstance(value, np.ndarray) else value
 
 
 def _relative(residual: Array, scale: Array) -> Array:

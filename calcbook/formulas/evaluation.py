@@ -6,6 +6,7 @@ same bits alone as among others. Where samples choose different branches, each b
 
 from __future__ import annotations
 
+import operator
 from collections import Counter
 from collections.abc import Callable, Mapping
 from typing import Any
@@ -48,17 +49,18 @@ class _Frame:
 _Step = Callable[[_Frame], Any]
 _Row = Callable[[_Frame], list[Any]]
 
+# On arrays these are numpy's functions; on single figures (``numpy.float64``) they round alike and take a tenth.
 _OPERATIONS: dict[str, Callable[..., Any]] = {
-    "+": np.add,
-    "-": np.subtract,
-    "*": np.multiply,
-    "/": np.divide,
-    "<": np.less,
-    "<=": np.less_equal,
-    ">": np.greater,
-    ">=": np.greater_equal,
-    "==": np.equal,
-    "!=": np.not_equal,
+    "+": operator.add,
+    "-": operator.sub,
+    "*": operator.mul,
+    "/": operator.truediv,
+    "<": operator.lt,
+    "<=": operator.le,
+    ">": operator.gt,
+    ">=": operator.ge,
+    "==": operator.eq,
+    "!=": operator.ne,
 }
 
 
@@ -133,14 +135,20 @@ _FLOATS = np.dtype(np.float64)
 
 
 def _array(value: Any) -> Any:
-    """A value as contiguous floats (strided memory may take another inner loop); a table column as it is."""
-    if type(value) is np.ndarray and value.dtype is _FLOATS and value.flags.c_contiguous:
-        return value
+    """A value as contiguous floats (strided memory may take another inner loop), a single one as a figure; a
+    table column as it is."""
+    if type(value) is np.ndarray and value.dtype is _FLOATS:
+        if value.ndim == 0:
+            return value[()]
+        if value.flags.c_contiguous:
+            return value
     if isinstance(value, float):
-        return np.array(value)
+        return np.float64(value)
     if hasattr(value, "mean") and hasattr(value, "slope"):
         return value
     array = np.asarray(value, dtype=np.float64)
+    if array.ndim == 0:
+        return array[()]
     return array if array.flags.c_contiguous else array.copy(order="C")
 
 
@@ -180,8 +188,7 @@ def _compile(node: Node, repeated: dict[Node, int]) -> _Step:
 
 def _constant_step(step: _Step) -> _Step:
     with np.errstate(all="ignore"):
-        constant = np.array(step(_Frame({})), dtype=np.float64)
-    constant.setflags(write=False)
+        constant = np.float64(step(_Frame({})))
     return lambda frame: constant
 
 
@@ -227,8 +234,7 @@ def _compile_truth(node: Node, repeated: dict[Node, int]) -> _Step:
 
 
 def _fixed(value: float) -> _Step:
-    constant = np.array(value)
-    constant.setflags(write=False)
+    constant = np.float64(value)
     return lambda frame: constant
 
 
@@ -281,7 +287,7 @@ def _logic_step(op: str, parts: tuple[Node, ...], repeated: dict[Node, int]) -> 
     first = _compile_truth(parts[0], repeated)
     later = [_Branch((part,), (_compile_truth(part, repeated),)) for part in parts[1:]]
     settled_by = op == "or"
-    settled = _Branch((), (_fixed(settled_by),))
+    settled = _Branch((), (lambda frame: np.bool_(settled_by),))
 
     def logic(frame: _Frame) -> Any:
         result: Any = np.asarray(first(frame))
