@@ -276,6 +276,9 @@ def _single(
     return Faults([Fault(code, place, message, found, expected, nearest)])
 
 
+_COMMENT = re.compile(r"(\s+)#(\S?)")
+
+
 class _Builder:
     """Turns the parser's nodes into our tree and finds the traps that YAML accepts in silence."""
 
@@ -362,7 +365,7 @@ class _Builder:
         """`drawing #12` loses its number: a comment that does not look like one is a fault."""
         line = self.lines[node.end_mark.line] if node.end_mark.line < len(self.lines) else ""
         rest = line[node.end_mark.column :]
-        cut = re.match(r"(\s+)#(\S?)", rest)
+        cut = _COMMENT.match(rest) if "#" in rest else None
         after_text = node.value and cut is not None and cut.group(1) == " "
         if cut is None or not (after_text or cut.group(2)) or rest.startswith(" # ---"):
             return None

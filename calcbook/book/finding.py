@@ -4,8 +4,8 @@ from __future__ import annotations
 
 import os
 from collections.abc import Iterable
-from dataclasses import dataclass
 from pathlib import Path
+from typing import NamedTuple
 
 from calcbook.calcfile import BOOK_FILE, read_settings
 from calcbook.faults import Collector, Place
@@ -14,8 +14,7 @@ OUTPUT = "output"
 BESIDE = (".signoffs.yaml", ".form.yaml")
 
 
-@dataclass(frozen=True, slots=True)
-class Found:
+class Found(NamedTuple):
     """One calculation file: its path, the name it is called by, and the folder for its book's records."""
 
     path: Path

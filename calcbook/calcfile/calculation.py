@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping
 from dataclasses import dataclass, field
+from typing import NamedTuple
 
 from calcbook.calcfile.links import Link
 from calcbook.calcfile.survey import Survey
@@ -36,8 +37,7 @@ class Value:
         return self.quantity is not None
 
 
-@dataclass(frozen=True, slots=True)
-class Tolerance:
+class Tolerance(NamedTuple):
     """A tolerance as written: ``kind`` is rectangular, triangular, standard, or expanded with its factor k.
 
     ``degrees`` are the degrees of freedom behind a standard or expanded tolerance; infinite where none are
@@ -51,8 +51,7 @@ class Tolerance:
     degrees: float = math.inf
 
 
-@dataclass(frozen=True, slots=True)
-class Given:
+class Given(NamedTuple):
     """A named input quantity."""
 
     symbol: str
@@ -64,8 +63,7 @@ class Given:
     link: Link | None = None
 
 
-@dataclass(frozen=True, slots=True)
-class Derived:
+class Derived(NamedTuple):
     """A quantity that follows from givens by a relation."""
 
     symbol: str
@@ -74,8 +72,7 @@ class Derived:
     place: Place
 
 
-@dataclass(frozen=True, slots=True)
-class Assumption:
+class Assumption(NamedTuple):
     """A statement taken as true by the engineer."""
 
     id: str
@@ -91,8 +88,7 @@ class Assumption:
         return bool(self.verified_by and self.verified_on and self.evidence)
 
 
-@dataclass(frozen=True, slots=True)
-class Revision:
+class Revision(NamedTuple):
     """One line of the revision history."""
 
     revision: str
@@ -166,8 +162,7 @@ class Duty:
         return stream in (self.hot.stream, self.cold.stream)
 
 
-@dataclass(frozen=True, slots=True)
-class FoulingSpecified:
+class FoulingSpecified(NamedTuple):
     """Fouling of the whole unit by ``kind`` (cleanliness or excess surface), split over its terms by name."""
 
     kind: str
@@ -176,8 +171,7 @@ class FoulingSpecified:
     place: Place
 
 
-@dataclass(frozen=True, slots=True)
-class Geometry:
+class Geometry(NamedTuple):
     """Shape and the dimensions that stand in the file, by their key."""
 
     shape: str
@@ -185,8 +179,7 @@ class Geometry:
     place: Place
 
 
-@dataclass(frozen=True, slots=True)
-class Deposit:
+class Deposit(NamedTuple):
     """A fouling layer by thickness and conductivity; without a thickness it follows from a growing resistance."""
 
     thickness: Value | None
@@ -195,8 +188,7 @@ class Deposit:
     place: Place
 
 
-@dataclass(frozen=True, slots=True)
-class Growth:
+class Growth(NamedTuple):
     """A fouling resistance that grows in service: its card, the time in service, the card's figures by symbol."""
 
     model: str
@@ -209,8 +201,7 @@ class Growth:
         return self.text_places.get(key, self.place)
 
 
-@dataclass(frozen=True, slots=True)
-class Fins:
+class Fins(NamedTuple):
     """Fins on the surface that a film acts on; ``values`` holds the figures by their key."""
 
     shape: str
@@ -249,8 +240,7 @@ class Term:
         return self.values[key].place if key in self.values else self.place
 
 
-@dataclass(frozen=True, slots=True)
-class Criterion:
+class Criterion(NamedTuple):
     """An acceptance criterion: a result, an operator, and a quantity or given."""
 
     text: str
@@ -261,8 +251,7 @@ class Criterion:
     place: Place
 
 
-@dataclass(frozen=True, slots=True)
-class Acceptance:
+class Acceptance(NamedTuple):
     """The engineer's answer to a failed check, with its bound and reason."""
 
     check: str
@@ -275,8 +264,7 @@ class Acceptance:
     place: Place
 
 
-@dataclass(frozen=True, slots=True)
-class Report:
+class Report(NamedTuple):
     """How results are reported: the basis of U, and units."""
 
     u_on: str
@@ -287,8 +275,7 @@ class Report:
     service_place: Place | None = None
 
 
-@dataclass(frozen=True, slots=True)
-class Swept:
+class Swept(NamedTuple):
     """A given with the first and the last of the evenly spaced figures that it takes."""
 
     symbol: str
@@ -300,8 +287,7 @@ class Swept:
     place: Place
 
 
-@dataclass(frozen=True, slots=True)
-class SweepText:
+class SweepText(NamedTuple):
     """A sweep over one or two givens; ``of`` are the names of the results wanted, each with its place."""
 
     swept: tuple[Swept, ...]
@@ -326,8 +312,7 @@ class Settings:
     plain: object = None
 
 
-@dataclass(frozen=True, slots=True)
-class TimeInService:
+class TimeInService(NamedTuple):
     """How long the unit is followed as its fouling grows, and in how many rows from the cleaned unit on."""
 
     until: Value
@@ -335,8 +320,7 @@ class TimeInService:
     place: Place
 
 
-@dataclass(frozen=True, slots=True)
-class Cleaning:
+class Cleaning(NamedTuple):
     """What one cleaning takes and costs. Without money (``currency`` empty) the interval of most heat is meant.
 
     ``against`` names what the heat that is lost is counted from: the cleaned unit, the duty, or nothing stated.

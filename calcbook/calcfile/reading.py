@@ -520,7 +520,7 @@ class Reader:
         scalar = fields.scalar(stated[0])
         assert scalar is not None
         found = self.half_width(scalar, quantity, stated[0], self.coverage_factor(fields))
-        return replace(found, degrees=self.degrees_of_freedom(fields)) if found is not None else None
+        return found._replace(degrees=self.degrees_of_freedom(fields)) if found is not None else None
 
     def half_width(self, node: Scalar, quantity: Quantity, kind: str, factor: float) -> Tolerance | None:
         """A tolerance whose text can be read beside its value; what it does is settled later."""
@@ -1319,8 +1319,8 @@ class Reader:
             found = self.given(key, item)
             if found is None:
                 return None
-            given = replace(
-                found, meaning=found.meaning or base.meaning, tolerance=found.tolerance or base.tolerance
+            given = found._replace(
+                meaning=found.meaning or base.meaning, tolerance=found.tolerance or base.tolerance
             )
         before, after = base.value.quantity, given.value.quantity
         assert before is not None and after is not None

@@ -4,14 +4,14 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
+from typing import NamedTuple
 
 from calcbook.calcfile.surveyfile import History
 from calcbook.faults import Place
 from calcbook.quantities import Quantity, Tolerance
 
 
-@dataclass(frozen=True, slots=True)
-class SurveyColumn:
+class SurveyColumn(NamedTuple):
     """The column that gives a given row by row: SI value = cell * factor + offset.
 
     ``low`` and ``high`` bound what the sensor can show, ``drift`` is what it may wander in a year.
@@ -29,8 +29,7 @@ class SurveyColumn:
     place: Place
 
 
-@dataclass(frozen=True, slots=True)
-class Cleaning:
+class Cleaning(NamedTuple):
     """A cleaning: as written, in seconds (of the time column, or since 1970-01-01), and who says so."""
 
     text: str
@@ -39,8 +38,7 @@ class Cleaning:
     place: Place
 
 
-@dataclass(frozen=True, slots=True)
-class HeatLoss:
+class HeatLoss(NamedTuple):
     """The part of the hot stream's heat that goes to the surroundings, with its half-width."""
 
     value: Quantity
@@ -49,8 +47,7 @@ class HeatLoss:
     place: Place
 
 
-@dataclass(frozen=True, slots=True)
-class Rules:
+class Rules(NamedTuple):
     """The limits of the rules that reject rows; None where the file states none."""
 
     closure: Quantity | None
@@ -61,8 +58,7 @@ class Rules:
     place: Place
 
 
-@dataclass(frozen=True, slots=True)
-class Zero:
+class Zero(NamedTuple):
     """The data after each cleaning on which zero is anchored: a number of rows, or a time."""
 
     rows: int
@@ -71,8 +67,7 @@ class Zero:
     place: Place
 
 
-@dataclass(frozen=True, slots=True)
-class Proposal:
+class Proposal(NamedTuple):
     """The time since cleaning that an allowance is proposed for, and how sure it is to be large enough."""
 
     after: Quantity

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import re
 from collections.abc import Collection
-from dataclasses import dataclass
+from typing import NamedTuple
 
 from calcbook.calcfile import descriptions as described
 from calcbook.documents import Fields, Node, Scalar, Sequence, read_mapping
@@ -18,8 +18,7 @@ LOWEST_COVERAGE, HIGHEST_COVERAGE = 0.5, 0.999
 COEFFICIENT = re.compile(r"[+-]?([0-9]{1,3}(\.[0-9]{1,15})?|\.[0-9]{1,15})")
 
 
-@dataclass(frozen=True, slots=True)
-class Correlation:
+class Correlation(NamedTuple):
     """Two givens whose errors go together, with their correlation coefficient."""
 
     first: str
@@ -29,16 +28,14 @@ class Correlation:
     place: Place
 
 
-@dataclass(frozen=True, slots=True)
-class AskedResult:
+class AskedResult(NamedTuple):
     """A result whose uncertainty is asked for, by name."""
 
     name: str
     place: Place
 
 
-@dataclass(frozen=True, slots=True)
-class UncertaintyText:
+class UncertaintyText(NamedTuple):
     """The `uncertainty:` of a file. ``digits`` are the significant digits of a standard uncertainty that
     the sampling makes sure of."""
 

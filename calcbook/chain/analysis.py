@@ -605,7 +605,7 @@ class _Analysis:
                             solutions[condition or SERVICE],
                         )
                         if row is not None:
-                            rows.append(replace(row, phase=phase, pressure=math.nan))
+                            rows.append(row._replace(phase=phase, pressure=math.nan))
         return rows
 
     def _property_row(

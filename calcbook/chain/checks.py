@@ -5,7 +5,6 @@ from __future__ import annotations
 import itertools
 import math
 from collections.abc import Mapping
-from dataclasses import replace
 
 import numpy as np
 
@@ -265,12 +264,12 @@ def _accepted(chain: Chain, result: CheckResult, collector: Collector) -> CheckR
             f" {acceptance.by}, {acceptance.date})"
         )
         if result.state == "within":
-            return replace(result, accepted=f"accepted though within: {words}")
+            return result._replace(accepted=f"accepted though within: {words}")
         if result.level == "stop" or result.state not in ("outside", "not evaluable"):
             return result
         if bool(within_bound(acceptance.direction, bound, np.asarray(result.value))):
-            return replace(result, state="accepted", accepted=words)
-        return replace(result, accepted=f"beyond the accepted bound: {words}")
+            return result._replace(state="accepted", accepted=words)
+        return result._replace(accepted=f"beyond the accepted bound: {words}")
     return result
 
 

@@ -87,7 +87,7 @@ def closed_ends(states: tuple[EndState, ...]) -> tuple[EndState, ...]:
 def end_checks(states: tuple[EndState, ...], case: str) -> list[CheckResult]:
     """Against boiling, condensing and freezing at the wall at both ends of a single record."""
     return [
-        replace(check, id=id_at(check.id, state))
+        check._replace(id=id_at(check.id, state))
         for state in states
         for check in wall_checks(state.chain, case, state.solution)
     ]

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from typing import NamedTuple
 
 from calcbook.chain.types import Input
 
@@ -10,8 +10,7 @@ from calcbook.chain.types import Input
 CRITERION, LIMIT, METHOD, CONTROLLING = "criterion", "limit", "method", "controlling term"
 
 
-@dataclass(frozen=True, slots=True)
-class Flip:
+class Flip(NamedTuple):
     """The smallest change of one given that flips one verdict of one case, the other figures as they stand.
 
     ``kind`` is criterion, limit, method or controlling term; ``was`` and ``becomes`` are its words. ``now``
@@ -47,8 +46,7 @@ class Flip:
         return abs(self.tolerances) <= 1.0
 
 
-@dataclass(frozen=True, slots=True)
-class Searched:
+class Searched(NamedTuple):
     """How far a given of a case was moved, in ``unit``, and in words what ended the search on each side."""
 
     input: Input
@@ -60,8 +58,7 @@ class Searched:
     high_end: str
 
 
-@dataclass(frozen=True, slots=True)
-class Flips:
+class Flips(NamedTuple):
     """Every distance to flip, and the ranges that were searched.
 
     Within a kind stands first what its own tolerance reaches, then the nearest.

@@ -218,7 +218,7 @@ class FixedOperation:
 
 def _is_liquid(state: FluidAtPressure, temperature: Array) -> Array:
     """Along one pressure a liquid lies below all else: the hottest that is one settles the others."""
-    different = np.unique(temperature[~np.isnan(temperature)])
+    different = np.sort(temperature[~np.isnan(temperature)])
     low, high = 0, len(different)
     while low < high:
         middle = (low + high) // 2

@@ -4,7 +4,8 @@ from __future__ import annotations
 
 import re
 from collections.abc import Mapping
-from dataclasses import dataclass, replace
+from dataclasses import replace
+from typing import NamedTuple
 
 from calcbook.calcfile.calculation import Growth, Term, Value
 from calcbook.chain.films import FilmScope
@@ -25,8 +26,7 @@ THICKNESS_CARDS = {
 _CALENDAR = re.compile(r"\b(months?|years?|yr)\b")
 
 
-@dataclass(frozen=True, slots=True)
-class Grown:
+class Grown(NamedTuple):
     """What has grown in service: the ids of the card's resistance, of the layer's (none when clean), of the time in
     service and of the card's needs by symbol, and the limits of the card."""
 
@@ -37,8 +37,7 @@ class Grown:
     checks: tuple[ChainCheck, ...]
 
 
-@dataclass(frozen=True, slots=True)
-class GrownDeposit:
+class GrownDeposit(NamedTuple):
     """The thickness that belongs to a resistance that has grown: its id, and the limits of its card."""
 
     thickness: str

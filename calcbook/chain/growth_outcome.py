@@ -3,13 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from typing import NamedTuple
 
 from calcbook.formulas import Relation
 
 
-@dataclass(frozen=True, slots=True)
-class TimeRow:
+class TimeRow(NamedTuple):
     """The unit at one time since its cleaning. Figures that the calculation does not give are NaN.
 
     ``resistances`` are those of the growing terms, each on its own surface; ``pressure_drops`` go by stream,
@@ -28,8 +27,7 @@ class TimeRow:
     mean: float
 
 
-@dataclass(frozen=True, slots=True)
-class Turn:
+class Turn(NamedTuple):
     """A verdict that turns on the way: its kind (criterion, limit, method, controlling term), its id and level, the
     words before and after, and the first time known to have the second."""
 
@@ -41,8 +39,7 @@ class Turn:
     time: float
 
 
-@dataclass(frozen=True, slots=True)
-class ClosedForm:
+class ClosedForm(NamedTuple):
     """A card that gives the interval in closed form, on figures of the chain; ``because`` says which."""
 
     card: str
@@ -50,8 +47,7 @@ class ClosedForm:
     because: str
 
 
-@dataclass(frozen=True, slots=True)
-class Interval:
+class Interval(NamedTuple):
     """The cleaning interval at which the mean over the cycle is least: there the loss equals the mean.
 
     ``interval`` is NaN with the reason in ``no_interval``. ``loss`` and ``mean`` are the relations, ``values``
@@ -73,8 +69,7 @@ class Interval:
     closed_form: ClosedForm | None
 
 
-@dataclass(frozen=True, slots=True)
-class OverTime:
+class OverTime(NamedTuple):
     """The unit over the time since its cleaning.
 
     ``duty_lost`` is the time at which the margin of area over the duty falls to nothing: NaN with the words in

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
+from typing import NamedTuple
 
 from calcbook.chain.flips_outcome import Flips
 from calcbook.chain.growth_outcome import OverTime
@@ -16,8 +17,7 @@ from calcbook.chain.uncertainty_outcome import Uncertainty
 from calcbook.quantities import QuantityKind
 
 
-@dataclass(frozen=True, slots=True)
-class CheckResult:
+class CheckResult(NamedTuple):
     """One limit evaluated in one condition of one case.
 
     ``state``: within, outside, accepted, not evaluable, or not counting (the part it limits does not
@@ -42,8 +42,7 @@ class CheckResult:
     accepted: str = ""
 
 
-@dataclass(frozen=True, slots=True)
-class CriterionResult:
+class CriterionResult(NamedTuple):
     """An acceptance criterion: met or not met, with its margin (value less limit, in the direction that is good)."""
 
     id: str
@@ -57,8 +56,7 @@ class CriterionResult:
     source: str
 
 
-@dataclass(frozen=True, slots=True)
-class Result:
+class Result(NamedTuple):
     """A named result; ``condition`` is clean, service or empty."""
 
     name: str
@@ -67,8 +65,7 @@ class Result:
     title: str
 
 
-@dataclass(frozen=True, slots=True)
-class TermRow:
+class TermRow(NamedTuple):
     """One term in one condition: resistances on its own and on the basis area, share, temperatures on both sides.
 
     Temperatures and ``flow_share`` are NaN where they are not known. ``methods`` names the method of each film.
@@ -87,8 +84,7 @@ class TermRow:
     branches: tuple[BranchRow, ...] = ()
 
 
-@dataclass(frozen=True, slots=True)
-class BranchRow:
+class BranchRow(NamedTuple):
     """One of several ways for heat side by side: its coefficient, its temperature, its heat flow in W."""
 
     name: str
@@ -98,8 +94,7 @@ class BranchRow:
     heat_flow: float
 
 
-@dataclass(frozen=True, slots=True)
-class StepRow:
+class StepRow(NamedTuple):
     """One row of the chain: the step with its values clean and service (NaN where a condition has none)."""
 
     step: ChainStep
@@ -107,8 +102,7 @@ class StepRow:
     service: float | bool
 
 
-@dataclass(frozen=True, slots=True)
-class TermChain:
+class TermChain(NamedTuple):
     """The rows of one term, with what was decided for it."""
 
     name: str
@@ -117,8 +111,7 @@ class TermChain:
     notes: tuple[str, ...]
 
 
-@dataclass(frozen=True, slots=True)
-class PropertyRow:
+class PropertyRow(NamedTuple):
     """Properties of a stream at one place: values by property name (NaN where not used)."""
 
     stream: str
@@ -131,8 +124,7 @@ class PropertyRow:
     provider: str
 
 
-@dataclass(frozen=True, slots=True)
-class CrossRow:
+class CrossRow(NamedTuple):
     """Another method of the situation on the same film: what it gives, or why it was left out."""
 
     term: str
@@ -146,8 +138,7 @@ class CrossRow:
     left_out: str = ""
 
 
-@dataclass(frozen=True, slots=True)
-class ClosureRow:
+class ClosureRow(NamedTuple):
     """One way to state the balance, with its relative residual."""
 
     what: str
@@ -158,8 +149,7 @@ class ClosureRow:
     unit: str
 
 
-@dataclass(frozen=True, slots=True)
-class SensitivityRow:
+class SensitivityRow(NamedTuple):
     """What one per cent of a given (one kelvin of a temperature) moves U in service by, W/(m² K)."""
 
     input: Input

@@ -12,7 +12,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from calcbook.chain.films import FilmScope
-from calcbook.chain.solve import Solution
+from calcbook.chain.solve import Solution, numbers_in
 from calcbook.chain.types import (
     CLEAN,
     SERVICE,
@@ -243,12 +243,12 @@ def _evaluated(drop: PressureDrop, solution: Solution, shared: set[str]) -> dict
     make(drop.choice_steps)
     if drop.laws:
         choice = law_choice(drop, values)
-        used = np.unique(choice)
+        used = numbers_in(choice)
         for number in used:
-            make(drop.laws[int(number)].steps)
-        chosen = values[drop.laws[int(used[0])].coefficient]
+            make(drop.laws[number].steps)
+        chosen = values[drop.laws[used[0]].coefficient]
         for number in used[1:]:
-            chosen = np.where(choice == number, values[drop.laws[int(number)].coefficient], chosen)
+            chosen = np.where(choice == number, values[drop.laws[number].coefficient], chosen)
         values[drop.factor] = chosen
     make(drop.total.steps)
     return values

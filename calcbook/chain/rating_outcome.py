@@ -3,15 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, NamedTuple
 
 if TYPE_CHECKING:
     from calcbook.chain.outcome import CheckResult
 
 
-@dataclass(frozen=True, slots=True)
-class LedgerRow:
+class LedgerRow(NamedTuple):
     """One entry of the margin ledger: a part of the installed area in m², and what it rests on.
 
     ``is_margin`` tells what is there beyond the duty at clean U.
@@ -23,8 +21,7 @@ class LedgerRow:
     is_margin: bool
 
 
-@dataclass(frozen=True, slots=True)
-class PartRow:
+class PartRow(NamedTuple):
     """One of several equal parts of the duty along the unit, with its own U in service and clean."""
 
     number: int
@@ -35,8 +32,7 @@ class PartRow:
     area: Mapping[str, float]
 
 
-@dataclass(frozen=True, slots=True)
-class Parts:
+class Parts(NamedTuple):
     """The unit in equal parts of the duty: each with its figures, and the summed area by condition."""
 
     rows: tuple[PartRow, ...]
@@ -44,8 +40,7 @@ class Parts:
     spread: float
 
 
-@dataclass(frozen=True, slots=True)
-class SideState:
+class SideState(NamedTuple):
     """One side of the unit in one state: flow, outlet, speed (NaN where not known), wetted surface."""
 
     mass_flow: float
@@ -54,8 +49,7 @@ class SideState:
     surface: float
 
 
-@dataclass(frozen=True, slots=True)
-class UnitState:
+class UnitState(NamedTuple):
     """The unit in one state: its heat flow, U, and both sides by name."""
 
     heat: float
@@ -63,8 +57,7 @@ class UnitState:
     sides: Mapping[str, SideState]
 
 
-@dataclass(frozen=True, slots=True)
-class DayOne:
+class DayOne(NamedTuple):
     """The clean unit at the inlets of the duty: as it runs, and turned down until it gives the duty.
 
     ``service`` is the unit with its allowances. ``turned_down`` is None with the reason in ``no_turn_down``.
@@ -102,8 +95,7 @@ class DayOne:
         return any(check.condition == "turned down" and check.unit == "m/s" for check in self.checks)
 
 
-@dataclass(frozen=True, slots=True)
-class Rating:
+class Rating(NamedTuple):
     """Everything that the rating of the base case adds to a solved calculation."""
 
     ledger: tuple[LedgerRow, ...]

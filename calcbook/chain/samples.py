@@ -42,7 +42,7 @@ from calcbook.chain.findings import (
 from calcbook.chain.flips_outcome import CONTROLLING, CRITERION, LIMIT, METHOD
 from calcbook.chain.outcome import CaseOutcome
 from calcbook.chain.pressure import drops, evaluate_pressure_drops, law_choice
-from calcbook.chain.solve import Solution, conditions_of, solve_both
+from calcbook.chain.solve import Solution, conditions_of, numbers_in, solve_both
 from calcbook.chain.types import (
     CONDITIONS,
     SERVICE,
@@ -316,13 +316,13 @@ class _Limits:
                 continue
             for branch in element.branches:
                 choice = solution.chosen.get(branch.name, np.zeros((), dtype=int))
-                for number in np.unique(choice):
-                    self._checks(branch.candidates[int(number)].checks, choice == number)
+                for number in numbers_in(choice):
+                    self._checks(branch.candidates[number].checks, choice == number)
         for _, _, drop in drops(self.chain):
             if drop.laws:
                 choice = law_choice(drop, solution.values)
-                for number in np.unique(choice):
-                    self._checks(drop.laws[int(number)].checks, choice == number)
+                for number in numbers_in(choice):
+                    self._checks(drop.laws[number].checks, choice == number)
             self._checks(drop.total.checks)
 
     def _checks(self, checks: Sequence[ChainCheck], acts: Array | None = None) -> None:

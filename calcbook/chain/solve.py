@@ -523,12 +523,12 @@ class Engine:
             coefficient, slopes = self._candidate(group, branch, int(choice[0]), samples, given, wants_slopes)
         else:
             coefficient, slopes = np.full(len(samples), np.nan), {}
-            for method in np.unique(choice):
+            for method in numbers_in(choice):
                 mask = choice == method
                 part, part_slopes = self._candidate(
                     group,
                     branch,
-                    int(method),
+                    method,
                     samples[mask],
                     {name: value[mask] for name, value in given.items()},
                     wants_slopes,
@@ -781,8 +781,8 @@ class Engine:
         coefficient = np.full(self.size, np.nan)
         shared = {step.id for step in branch.choice_steps}
         gathered: dict[str, Array] = {}
-        for method in np.unique(choice):
-            candidate = branch.candidates[int(method)]
+        for method in numbers_in(choice):
+            candidate = branch.candidates[method]
             samples = np.flatnonzero(choice == method)
             order = self._stay(candidate.steps, _moving(group))
             names = {bound for step in candidate.steps for bound in step.inputs.values()} - order.follows
@@ -835,6 +835,11 @@ class Engine:
     def _as_input(self, value: Array) -> Array:
         """A figure of the solution as steps take it: 0-d for a single record."""
         return value.reshape(()) if self.single else value
+
+
+def numbers_in(choice: Array) -> list[int]:
+    """The different numbers of a row of choices, in order."""
+    return np.flatnonzero(np.bincount(choice.ravel())).tolist()
 
 
 def outward(group: Group) -> float:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from typing import NamedTuple
 
 from calcbook.quantities import QuantityKind
 
@@ -22,8 +23,7 @@ class RuleCount:
     first: str
 
 
-@dataclass(frozen=True, slots=True)
-class CycleRow:
+class CycleRow(NamedTuple):
     """The time from one cleaning to the next: its rows, and how far off zero they start, m² K/W.
 
     The offset is the mean resistance of the rows that anchor zero, less what the model has grown there.
@@ -42,16 +42,14 @@ class CycleRow:
     systematic: float
 
 
-@dataclass(frozen=True, slots=True)
-class Gap:
+class Gap(NamedTuple):
     """A time without rows: where it begins, and its length in s."""
 
     begins: str
     length: float
 
 
-@dataclass(frozen=True, slots=True)
-class FittedFigure:
+class FittedFigure(NamedTuple):
     """A figure from the fit: a parameter of the growth model, or the fouling resistance at a time.
 
     ``scatter`` and ``systematic`` are its standard uncertainties from the rows' scatter and from tolerances;
@@ -70,8 +68,7 @@ class FittedFigure:
     held: str = ""
 
 
-@dataclass(frozen=True, slots=True)
-class SystematicPart:
+class SystematicPart(NamedTuple):
     """What is wrong in every row alike: its tolerance, standard uncertainty, and what that moves (SI).
 
     ``moves`` has the change of each fitted figure for one standard uncertainty, by the figure's id.
@@ -86,8 +83,7 @@ class SystematicPart:
     moves: tuple[tuple[str, float], ...]
 
 
-@dataclass(frozen=True, slots=True)
-class PlotColumn:
+class PlotColumn(NamedTuple):
     """One column of the plot over time: mean of the anchored rows in it and the fit there, NaN where none."""
 
     begins: str
@@ -96,8 +92,7 @@ class PlotColumn:
     cleaned: bool
 
 
-@dataclass(frozen=True, slots=True)
-class SurveyOutcome:
+class SurveyOutcome(NamedTuple):
     """Everything a survey says.
 
     Rows: ``rows`` in the file = the rules' counts + ``kept``; ``kept`` = ``fitted`` + ``before_cleaning`` +

@@ -2,14 +2,13 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from typing import NamedTuple
 
 from calcbook.chain.types import Input
 from calcbook.quantities import QuantityKind
 
 
-@dataclass(frozen=True, slots=True)
-class Axis:
+class Axis(NamedTuple):
     """One given with the figures that it takes, in SI and in ``unit`` (as the file writes it)."""
 
     input: Input
@@ -18,8 +17,7 @@ class Axis:
     unit: str
 
 
-@dataclass(frozen=True, slots=True)
-class SweptResult:
+class SweptResult(NamedTuple):
     """One result at every sample (SI, NaN where there is none), and the criteria on it that have a fixed limit."""
 
     name: str
@@ -29,8 +27,7 @@ class SweptResult:
     limits: tuple[tuple[str, float], ...]
 
 
-@dataclass(frozen=True, slots=True)
-class Sweep:
+class Sweep(NamedTuple):
     """A sweep of the base case, sample by sample; of two givens the second one runs fastest.
 
     ``missing`` says in words why a sample has no answer, empty where it has one; ``outside`` names the range
@@ -43,5 +40,5 @@ class Sweep:
     outside: tuple[tuple[str, ...], ...]
 
     @property
-    def count(self) -> int:
+    def samples(self) -> int:
         return len(self.missing)

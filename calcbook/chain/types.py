@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from functools import cached_property
-from typing import Any
+from typing import Any, NamedTuple
 
 import numpy as np
 
@@ -63,8 +63,7 @@ class ChainStep:
         return self.id
 
 
-@dataclass(frozen=True, slots=True)
-class Surface:
+class Surface(NamedTuple):
     """A surface of the wall, from the inside to the outside. ``diameter`` is empty for a plane.
 
     Where a film acts on fins, the total finned surface stands last, also without a diameter.
@@ -100,8 +99,7 @@ class Candidate:
     cards: tuple[Method, ...]
 
 
-@dataclass(frozen=True, slots=True)
-class ChoiceRow:
+class ChoiceRow(NamedTuple):
     """One row of a choice table, bound; the last has no condition."""
 
     relation: Relation | None

@@ -3,13 +3,12 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from typing import NamedTuple
 
 from calcbook.quantities import QuantityKind
 
 
-@dataclass(frozen=True, slots=True)
-class BudgetInput:
+class BudgetInput(NamedTuple):
     """A figure that is not known exactly: a given with its tolerance, or the factor of a method.
 
     ``rule`` says how the standard uncertainty follows from what is stated, in words.
@@ -27,8 +26,7 @@ class BudgetInput:
     is_method: bool
 
 
-@dataclass(frozen=True, slots=True)
-class BudgetRow:
+class BudgetRow(NamedTuple):
     """One line of a budget: the slope of the result in a figure, and what its uncertainty moves the result by.
 
     ``share`` of the variance is NaN where correlated figures cannot be told apart.
@@ -40,8 +38,7 @@ class BudgetRow:
     share: float
 
 
-@dataclass(frozen=True, slots=True)
-class Budget:
+class Budget(NamedTuple):
     """The first-order uncertainty of one result.
 
     ``degrees`` are the effective degrees of freedom (infinite where none are stated); ``wide_standard`` is the
@@ -67,8 +64,7 @@ class Budget:
         return self.expanded / abs(self.value) if self.value else math.nan
 
 
-@dataclass(frozen=True, slots=True)
-class LeftOut:
+class LeftOut(NamedTuple):
     """A method whose accuracy gives no figure to propagate: the term, the card, and why."""
 
     term: str
@@ -76,8 +72,7 @@ class LeftOut:
     reason: str
 
 
-@dataclass(frozen=True, slots=True)
-class CorrelationRow:
+class CorrelationRow(NamedTuple):
     """A stated correlation of two givens."""
 
     first: str
@@ -86,8 +81,7 @@ class CorrelationRow:
     source: str
 
 
-@dataclass(frozen=True, slots=True)
-class SampledResult:
+class SampledResult(NamedTuple):
     """One result over the samples: mean, standard uncertainty, and the coverage interval of equal tails.
 
     ``spread`` are twice the standard deviations of mean, standard uncertainty and both ends between the
@@ -110,8 +104,7 @@ class SampledResult:
     is_validated: bool
 
 
-@dataclass(frozen=True, slots=True)
-class Chance:
+class Chance(NamedTuple):
     """How often a statement holds over the samples, with the standard deviation of that share."""
 
     id: str
@@ -121,8 +114,7 @@ class Chance:
     deviation: float
 
 
-@dataclass(frozen=True, slots=True)
-class OutsideRow:
+class OutsideRow(NamedTuple):
     """A limit that samples leave: how many of them, and its state at the stated values."""
 
     check: str
@@ -132,8 +124,7 @@ class OutsideRow:
     nominal: str
 
 
-@dataclass(frozen=True, slots=True)
-class Sampling:
+class Sampling(NamedTuple):
     """A Monte Carlo propagation.
 
     ``unanswered`` samples have no result (no solution, a figure that cannot be, or outside a limit that
@@ -153,8 +144,7 @@ class Sampling:
     generator: str
 
 
-@dataclass(frozen=True, slots=True)
-class Uncertainty:
+class Uncertainty(NamedTuple):
     """The uncertainty of a calculation's results in one case; the empty name is the base case."""
 
     case: str

@@ -7,9 +7,9 @@ keep the standing of every figure.
 from __future__ import annotations
 
 from collections.abc import Iterable
-from dataclasses import dataclass
 from functools import cache
 from pathlib import Path
+from typing import NamedTuple
 
 from calcbook.documents import (
     Description,
@@ -87,8 +87,7 @@ EMISSIVITY = Description(
 )
 
 
-@dataclass(frozen=True, slots=True)
-class Band:
+class Band(NamedTuple):
     """What a quantity usually is in one place, ``low`` to ``high`` in SI; ``texts`` are those as written."""
 
     name: str
@@ -103,8 +102,7 @@ class Band:
     standing: str
 
 
-@dataclass(frozen=True, slots=True)
-class TypicalRow:
+class TypicalRow(NamedTuple):
     """What one publication calls typical of a service, in SI."""
 
     service: str
@@ -116,8 +114,7 @@ class TypicalRow:
     note: str
 
 
-@dataclass(frozen=True, slots=True)
-class AllowanceCard:
+class AllowanceCard(NamedTuple):
     """Typical values of one quantity by service; ``far`` is the factor beyond a range that warns."""
 
     id: str
@@ -129,8 +126,7 @@ class AllowanceCard:
     notes: tuple[str, ...]
 
 
-@dataclass(frozen=True, slots=True)
-class Typical:
+class Typical(NamedTuple):
     """A service over all publications: from the lowest low to the highest high, and who says so."""
 
     service: str
@@ -143,8 +139,7 @@ class Typical:
     standing: str
 
 
-@dataclass(frozen=True, slots=True)
-class Emissivity:
+class Emissivity(NamedTuple):
     """One row of the page of emissivities, as written."""
 
     surface: str

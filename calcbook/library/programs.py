@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field, replace
+from typing import NamedTuple
 
 import numpy as np
 
@@ -29,8 +30,7 @@ Find = Callable[[str], Method]
 Keys = Mapping[tuple[str, str], str]
 
 
-@dataclass(frozen=True, slots=True)
-class ProgramStep:
+class ProgramStep(NamedTuple):
     """One step: its name, the symbol and card it is shown under, and its operation with bound inputs."""
 
     name: str
@@ -41,16 +41,14 @@ class ProgramStep:
     inputs: Mapping[str, str]
 
 
-@dataclass(frozen=True, slots=True)
-class ProgramNeed:
+class ProgramNeed(NamedTuple):
     """One figure that the program takes from outside."""
 
     name: str
     need: Need
 
 
-@dataclass(frozen=True, slots=True)
-class Counting:
+class Counting(NamedTuple):
     """A condition under which a used card's limits count, with bound inputs."""
 
     relation: Relation

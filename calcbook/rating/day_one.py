@@ -196,4 +196,4 @@ def _checks(chain: Chain, inputs: Mapping[str, Array], solution: Solution, state
     found = [check for check in phases if check.state != "within"]
     found += [check for check in _ranges(chain, solution) if check.state in ("outside", "not evaluable")]
     found += band_checks(chain, "", solution)
-    return [replace(check, condition=state) for check in found]
+    return [check._replace(condition=state) for check in found]

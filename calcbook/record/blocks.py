@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import NamedTuple
 
 
 @dataclass(frozen=True, slots=True)
@@ -17,8 +18,7 @@ class Heading:
             raise ValueError(f"a heading has a level from 1 to 6, not {self.level}")
 
 
-@dataclass(frozen=True, slots=True)
-class Paragraph:
+class Paragraph(NamedTuple):
     """One paragraph."""
 
     text: str
@@ -40,22 +40,19 @@ class Table:
                 raise ValueError(f"a row of {len(row)} cells under {len(self.columns)} columns: {row}")
 
 
-@dataclass(frozen=True, slots=True)
-class Bullets:
+class Bullets(NamedTuple):
     """A list of sentences or facts, one a line."""
 
     items: tuple[str, ...]
 
 
-@dataclass(frozen=True, slots=True)
-class Code:
+class Code(NamedTuple):
     """Lines shown as they stand, in letters of one width."""
 
     text: str
 
 
-@dataclass(frozen=True, slots=True)
-class Quote:
+class Quote(NamedTuple):
     """Sentences set apart from the text around them, one a paragraph."""
 
     lines: tuple[str, ...]

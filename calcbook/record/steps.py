@@ -7,8 +7,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterable, Mapping
-from dataclasses import dataclass
-from typing import Any
+from typing import Any, NamedTuple
 
 import numpy as np
 
@@ -41,8 +40,7 @@ NO_DEPOSIT = "no deposit"
 SATURATED = "saturated"
 
 
-@dataclass(frozen=True, slots=True)
-class ChainLine:
+class ChainLine(NamedTuple):
     """The texts of one row; ``clean_values`` are the clean values put in."""
 
     quantity: str
@@ -392,8 +390,7 @@ def _side(side: Node, known: Values) -> str:
 # --- figures that the solution closes ----------------------------------------------------------------
 
 
-@dataclass(frozen=True, slots=True)
-class _Closing:
+class _Closing(NamedTuple):
     """A figure of the solution, and the relation of the circuit that it satisfies."""
 
     symbol: str

@@ -7,7 +7,6 @@ import os
 import shutil
 import tempfile
 from collections.abc import Iterator, Mapping
-from dataclasses import replace
 from pathlib import Path
 
 from calcbook.calcfile import BOOK_FILE
@@ -164,7 +163,7 @@ def _frozen(work: Work, lifecycle: Lifecycle, date: datetime.date, kind: str) ->
     texts = dict(_copied(work))
     texts[RECORD] = record_text(work.solved, life_from(issued, calculation.settings, changes)).encode("utf-8")
     texts[RESULTS] = results_text(work.solved, digest, software).encode("utf-8")
-    copy = replace(copy, files={name: sha256_of(data) for name, data in sorted(texts.items())})
+    copy = copy._replace(files={name: sha256_of(data) for name, data in sorted(texts.items())})
     _write_folder(target, {**texts, SEAL_NAME: seal_text(copy).encode("utf-8")}, work)
     return copy
 

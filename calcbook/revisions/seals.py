@@ -6,8 +6,8 @@ import hashlib
 import json
 import re
 from collections.abc import Mapping
-from dataclasses import dataclass
 from pathlib import Path
+from typing import NamedTuple
 
 from calcbook.faults import Fault, Faults, Place
 
@@ -25,8 +25,7 @@ TEXTS = ("number", "revision", "kind", "date", "supersedes", "supersedes_seal", 
 REVISION = re.compile(r"[A-Za-z0-9][A-Za-z0-9.-]{0,9}")
 
 
-@dataclass(frozen=True, slots=True)
-class Issued:
+class Issued(NamedTuple):
     """One issued copy: its folder and what its seal says. ``whole`` is the digest of the seal itself."""
 
     folder: Path
@@ -42,8 +41,7 @@ class Issued:
     whole: str = ""
 
 
-@dataclass(frozen=True, slots=True)
-class SealFinding:
+class SealFinding(NamedTuple):
     """One way in which an issued copy is not what was frozen."""
 
     file: str

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import datetime
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from pathlib import Path
 
 from calcbook.chain.outcome import Solved
@@ -272,7 +272,7 @@ def _blind_step(work: Work, role: str, signer: str, date: datetime.date, lifecyc
         )
     )
     path = signoffs_path(work.path)
-    write_signoffs(path, replace(kept, hand_values=(*kept.hand_values, entry)), kept)
+    write_signoffs(path, kept._replace(hand_values=(*kept.hand_values, entry)), kept)
     form.unlink(missing_ok=True)
     return Step(VALUES_STORED, path)
 
@@ -316,7 +316,7 @@ def _take(work: Work, role: str, signer: str, date: datetime.date) -> Step:
     values = tuple(
         item for item in kept.hand_values if item.revision == calculation.revision and item.role != role
     )
-    write_signoffs(path, replace(kept, signoffs=tuple(ordered), hand_values=values), kept)
+    write_signoffs(path, kept._replace(signoffs=tuple(ordered), hand_values=values), kept)
     write_record(work)
     if role not in WITHOUT_FORM:
         forms.form_path(work.path, role).unlink(missing_ok=True)
@@ -328,9 +328,8 @@ def _with_form(entry: SignOff, work: Work, kept: SignOffFile) -> SignOff:
     # Answers cite what was calculated: the record without its life.
     filled = forms.read_form(form, work.solved, entry.role, entry.person, record_text(work.solved))
     stored = _stored(kept, work, entry.role, entry.person)
-    blind = replace(stored, values=forms.revealed(stored, work.solved)) if stored is not None else None
-    return replace(
-        entry,
+    blind = stored._replace(values=forms.revealed(stored, work.solved)) if stored is not None else None
+    return entry._replace(
         way=filled.way,
         checked_with=filled.checked_with,
         answers=filled.answers,
@@ -374,7 +373,7 @@ def declare_void(work: Work, person: str, date: datetime.date, because: str) -> 
             shown(because),
             "why it is void and what replaces it",
         )
-    write_signoffs(path, replace(kept, void=Voiding(signer, date.isoformat(), visible(because))), kept)
+    write_signoffs(path, kept._replace(void=Voiding(signer, date.isoformat(), visible(because))), kept)
     write_record(work)
     return Step(VOID, path)
 

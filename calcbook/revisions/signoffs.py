@@ -8,8 +8,8 @@ import json
 import re
 import unicodedata
 from collections.abc import Iterable, Mapping
-from dataclasses import dataclass, replace
 from pathlib import Path
+from typing import NamedTuple
 
 from calcbook.calcfile import Settings
 from calcbook.chain.outcome import Solved
@@ -47,8 +47,7 @@ def lies_ahead(date: str) -> bool:
 # --- what was signed -------------------------------------------------------------------------------
 
 
-@dataclass(frozen=True, slots=True)
-class Content:
+class Content(NamedTuple):
     """What a sign-off is bound to: the digests, the software, and marks of the parts, to name what changed.
 
     ``meaning``, ``cards`` and ``results`` hold short digests by the name of a part; ``headlines`` the
@@ -179,8 +178,7 @@ def software_changed(then: Software, now: Software) -> str:
 # --- a sign-off -------------------------------------------------------------------------------------
 
 
-@dataclass(frozen=True, slots=True)
-class Answer:
+class Answer(NamedTuple):
     """The checker's words to one question that only a person can answer."""
 
     number: str
@@ -188,8 +186,7 @@ class Answer:
     answer: str
 
 
-@dataclass(frozen=True, slots=True)
-class Acknowledged:
+class Acknowledged(NamedTuple):
     """An assumption that the runner made, with the checker's acknowledgement."""
 
     id: str
@@ -197,8 +194,7 @@ class Acknowledged:
     words: str
 
 
-@dataclass(frozen=True, slots=True)
-class HandValue:
+class HandValue(NamedTuple):
     """A value found by hand; ``shown`` and ``deviation`` are empty until it is revealed."""
 
     result: str
@@ -207,8 +203,7 @@ class HandValue:
     deviation: str = ""
 
 
-@dataclass(frozen=True, slots=True)
-class HandValues:
+class HandValues(NamedTuple):
     """Values that a checker stored before filling in the form, with the content they were stored for."""
 
     role: str
@@ -220,8 +215,7 @@ class HandValues:
     bound: str = ""
 
 
-@dataclass(frozen=True, slots=True)
-class SignOff:
+class SignOff(NamedTuple):
     """A person's role, name and date, bound to a content. ``way`` and what follows are a checker's."""
 
     role: str
@@ -238,8 +232,7 @@ class SignOff:
     bound: str = ""
 
 
-@dataclass(frozen=True, slots=True)
-class Voiding:
+class Voiding(NamedTuple):
     """The end of a calculation: who declared it void, when and why."""
 
     person: str
@@ -247,8 +240,7 @@ class Voiding:
     because: str
 
 
-@dataclass(frozen=True, slots=True)
-class SignOffFile:
+class SignOffFile(NamedTuple):
     """Everything that stands in the file of sign-offs."""
 
     signoffs: tuple[SignOff, ...] = ()
@@ -258,7 +250,7 @@ class SignOffFile:
 
 def bound(entry: SignOff) -> SignOff:
     """The sign-off with the digest of its own words."""
-    return replace(entry, bound=_whole(_signoff_data(entry)))
+    return entry._replace(bound=_whole(_signoff_data(entry)))
 
 
 def is_unaltered(entry: SignOff) -> bool:
@@ -268,12 +260,12 @@ def is_unaltered(entry: SignOff) -> bool:
 
 def bound_values(values: HandValues) -> HandValues:
     """Hand values with the digest of their own words."""
-    return replace(values, bound=_whole(_hand_data(values)))
+    return values._replace(bound=_whole(_hand_data(values)))
 
 
 def are_unaltered(values: HandValues) -> bool:
     """Whether hand values still are what was stored."""
-    bare = replace(values, values=tuple(replace(item, shown="", deviation="") for item in values.values))
+    bare = values._replace(values=tuple(item._replace(shown="", deviation="") for item in values.values))
     return values.bound == _whole(_hand_data(bare))
 
 

@@ -399,7 +399,7 @@ def test_every_figure_stands_in_the_digest(cooler: Solved) -> None:
     assert cooler.over_time is not None
     names = [name for name, _, _ in growth_figures(cooler.over_time)]
     assert len(names) == len(set(names)) and "cleaning interval" in names
-    moved = replace(cooler, over_time=replace(cooler.over_time, duty_lost=1.0))
+    moved = replace(cooler, over_time=cooler.over_time._replace(duty_lost=1.0))
     assert digest_of(moved).results != digest_of(cooler).results
 
 

@@ -146,7 +146,7 @@ def test_a_displayed_digit_moves_the_results_and_a_hidden_one_does_not(water_coo
     def with_overall(factor: float) -> str:
         base = water_cooler.base
         result = base.results["U_service"]
-        results = {**base.results, "U_service": replace(result, value=result.value * factor)}
+        results = {**base.results, "U_service": result._replace(value=result.value * factor)}
         return digest_of(
             replace(water_cooler, cases=(replace(base, results=results), *water_cooler.cases[1:]))
         ).results

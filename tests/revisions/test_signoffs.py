@@ -151,9 +151,9 @@ def test_a_sign_off_that_was_written_for_the_preparer_by_hand_is_void(path: Path
     sign_prepared(path)
     sign_checked(path)
     kept = read_signoffs(signoffs_path(path))
-    forged = bound(replace(kept.signoffs[1], person="kl", name="K. L."))
+    forged = bound(kept.signoffs[1]._replace(person="kl", name="K. L."))
     signoffs_path(path).write_text(
-        signoffs_text(replace(kept, signoffs=(kept.signoffs[0], forged))), encoding="utf-8"
+        signoffs_text(kept._replace(signoffs=(kept.signoffs[0], forged))), encoding="utf-8"
     )
     work = work_of(path)
     checked = lifecycle_of(path, work.solved, work.output).signoffs[1]
@@ -234,9 +234,9 @@ def test_an_approval_that_was_dated_before_the_check_by_hand_is_void(path: Path)
     sign_checked(path, "2026-09-05")
     sign(work_of(path), "approved", "ta", day("2026-09-05"))
     kept = read_signoffs(signoffs_path(path))
-    early = bound(replace(kept.signoffs[2], date="2026-09-04"))
+    early = bound(kept.signoffs[2]._replace(date="2026-09-04"))
     signoffs_path(path).write_text(
-        signoffs_text(replace(kept, signoffs=(*kept.signoffs[:2], early))), encoding="utf-8"
+        signoffs_text(kept._replace(signoffs=(*kept.signoffs[:2], early))), encoding="utf-8"
     )
     work = work_of(path)
     approved = lifecycle_of(path, work.solved, work.output).signoffs[2]
@@ -533,7 +533,7 @@ def test_a_file_of_sign_offs_is_read_back_as_it_was_written(
     path.write_text(signoffs_text(whole), encoding="utf-8", newline="\n")
     again = read_signoffs(path)
     assert is_unaltered(again.signoffs[0])
-    assert replace(again.signoffs[0], content=content) == entry
+    assert again.signoffs[0]._replace(content=content) == entry
     assert (again.hand_values, again.void) == (whole.hand_values, whole.void)
     assert signoffs_text(again) == signoffs_text(whole)
 

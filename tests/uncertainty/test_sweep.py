@@ -85,7 +85,7 @@ def test_of_two_givens_the_second_runs_fastest(tmp_path: Path) -> None:
     found = sweep_in(solved_of(tmp_path, WALL + TWO))
     service, cleanliness = found.results
     grid = list(product(found.axes[0].figures, found.axes[1].figures))
-    assert found.count == len(grid) == 12
+    assert found.samples == len(grid) == 12
     for (allowance, outer), overall, ratio in zip(grid, service.values, cleanliness.values, strict=True):
         clean = 5e-4 + 1.25e-4 + 1.0 / outer
         assert overall == pytest.approx(1.0 / (clean + allowance), rel=1e-13)

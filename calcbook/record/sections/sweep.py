@@ -34,7 +34,7 @@ def sweep(page: Page) -> list[Block]:
     names = " and ".join(written_name(axis.input.symbol) for axis in found.axes)
     cases = " of the base case" if page.has_cases else ""
     words = (
-        f"{counted(found.count, 'sample', 'samples')}{cases} over {names}, evenly spaced, the other figures as"
+        f"{counted(found.samples, 'sample', 'samples')}{cases} over {names}, evenly spaced, the other figures as"
         f" they stand. {_counted_words(found)}"
     )
     blocks: list[Block] = [Heading(3, f"Sweep over {names}"), Paragraph(words)]
@@ -68,7 +68,7 @@ def _table(page: Page, found: Sweep) -> Table:
             *(_value(page, result, place) for result in found.results),
             _remark(found, place),
         )
-        for place in range(found.count)
+        for place in range(found.samples)
     )
     return Table(columns, rows)
 
@@ -134,7 +134,7 @@ def _outside_lines(found: Sweep) -> list[Block]:
     if len(found.axes) == 1:
         return []
     counts: dict[str, int] = {}
-    for place in range(found.count):
+    for place in range(found.samples):
         for name in found.outside[place]:
             counts[f"outside {name}"] = counts.get(f"outside {name}", 0) + 1
         if found.missing[place]:
