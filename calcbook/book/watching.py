@@ -23,7 +23,7 @@ from calcbook.interface import HOUSE_CARDS, forget_house_cards
 from calcbook.links import ISSUED
 
 # Between two looks, in seconds: a look at a hundred files takes less than a millisecond.
-PERIOD, PERIOD_PER_FILE = 0.015, 0.0001
+PERIOD, PERIOD_PER_FILE = 0.006, 0.0001
 # A file may be caught half written: it is read when it has not changed for so long.
 SETTLED = 0.004
 TABLE_NAMED = re.compile(r"[^\n\"',:{}\[\]]+\.csv\b")

@@ -44,6 +44,7 @@ from calcbook.chain.outcome import CaseOutcome
 from calcbook.chain.pressure import drops, evaluate_pressure_drops, law_choice
 from calcbook.chain.solve import Solution, conditions_of, numbers_in, solve_both
 from calcbook.chain.types import (
+    CLEAN,
     CONDITIONS,
     SERVICE,
     Chain,
@@ -216,11 +217,7 @@ def _solve(
         samples.results |= allowance_figures(chain, inputs, solutions[SERVICE], thorough=False)
     verdicts = [
         *_criteria(chain, solutions, samples.results),
-        *(
-            verdict
-            for condition in reversed(CONDITIONS)
-            for verdict in _Limits(chain, solutions[condition], cases, case_of, ends).verdicts()
-        ),
+        *_Limits(chain, both, cases, case_of, ends).verdicts(),
         *_methods(chain, solutions),
         _controlling(chain, solutions[SERVICE]),
     ]
@@ -271,96 +268,85 @@ class _Limit:
     figure: Array | None
     margins: list[Margins]
 
+    def part(self, samples: slice) -> _Limit:
+        """The same for some of the samples."""
+        figure = _cut(self.figure, samples) if self.figure is not None else None
+        return _Limit(self.level, _cut(self.codes, samples), figure, [_joined(self.margins, samples)])
+
+
+_Found = dict[str, _Limit]
+
 
 class _Limits:
-    """The limits of one condition, by id."""
+    """The limits of a solution of both conditions, clean samples first, and of both ends of the unit."""
 
     def __init__(
-        self,
-        chain: Chain,
-        solution: Solution,
-        cases: Sequence[str],
-        case_of: Array,
-        ends: Sequence[EndState],
+        self, chain: Chain, both: Solution, cases: Sequence[str], case_of: Array, ends: Sequence[EndState]
     ):
         self.chain = chain
-        self.solution = solution
-        self.ends = [state for state in ends if state.solution.condition == solution.condition]
+        self.both = both
+        self.ends = ends
         self.cases = cases
         self.case_of = case_of
-        self.found: dict[str, _Limit] = {}
 
     def verdicts(self) -> Iterator[Verdicts]:
-        self._cards()
-        for item in wall_limits(self.chain, self.solution):
-            self._wall(item.id, item, item.acts)
-        for state in self.ends:
-            for item in wall_limits(state.chain, state.solution):
-                self._wall(id_at(item.id, state), item, item.acts & state.solution.converged)
-        condition = self.solution.condition
-        for name, limit in self.found.items():
-            codes = self._with_acceptances(name, limit)
-            yield Verdicts(LIMIT, name, condition, LIMIT_WORDS, codes, _joined(limit.margins), limit.level)
+        found: _Found = {}
+        self._cards(found)
+        for item in wall_limits(self.chain, self.both):
+            _put_wall(found, item.id, item, item.acts)
+        size = len(self.case_of)
+        for condition, half in ((SERVICE, slice(size, 2 * size)), (CLEAN, slice(0, size))):
+            limits = {name: limit.part(half) for name, limit in found.items()}
+            for state in self.ends:
+                if state.solution.condition == condition:
+                    for item in wall_limits(state.chain, state.solution):
+                        acts = item.acts & state.solution.converged
+                        _put_wall(limits, id_at(item.id, state), item, acts)
+            for name, limit in limits.items():
+                if (limit.codes != NO_VERDICT).any():
+                    codes = self._with_acceptances(name, limit, condition)
+                    margins = _joined(limit.margins)
+                    yield Verdicts(LIMIT, name, condition, LIMIT_WORDS, codes, margins, limit.level)
 
-    def _wall(self, name: str, item: WallLimit, acts: Array) -> None:
-        codes = np.where(acts, _CODE_OF_STATE[item.states], NO_VERDICT)
-        self._put(name, "range", codes, item.surface, _fixed_margins(item.margin))
-
-    def _cards(self) -> None:
+    def _cards(self, found: _Found) -> None:
         """As in a record: the shared limits, those of each element, those of what each sample chose."""
-        solution = self.solution
-        self._checks(self.chain.checks)
+        both = self.both
+        self._checks(found, self.chain.checks)
         for element in self.chain.elements:
             if isinstance(element, Layer):
-                self._checks(element.checks)
+                self._checks(found, element.checks)
                 continue
             for branch in element.branches:
-                choice = solution.chosen.get(branch.name, np.zeros((), dtype=int))
+                choice = both.chosen.get(branch.name, np.zeros((), dtype=int))
                 for number in numbers_in(choice):
-                    self._checks(branch.candidates[number].checks, choice == number)
+                    self._checks(found, branch.candidates[number].checks, choice == number)
         for _, _, drop in drops(self.chain):
             if drop.laws:
-                choice = law_choice(drop, solution.values)
+                choice = law_choice(drop, both.values)
                 for number in numbers_in(choice):
-                    self._checks(drop.laws[number].checks, choice == number)
-            self._checks(drop.total.checks)
+                    self._checks(found, drop.laws[number].checks, choice == number)
+            self._checks(found, drop.total.checks)
 
-    def _checks(self, checks: Sequence[ChainCheck], acts: Array | None = None) -> None:
-        values = self.solution.values
+    def _checks(self, found: _Found, checks: Sequence[ChainCheck], acts: Array | None = None) -> None:
+        values = self.both.values
         for check in checks:
             codes = _CODE_OF_STATE[check_states(check, values)]
             if acts is not None:
                 codes = np.where(acts, codes, NO_VERDICT)
-            self._put(
-                check.id,
-                check.limit.level,
-                codes,
-                checked_figure(check, values) if self._acceptances(check.id) else None,
-                _margins_of(check, values),
-            )
-
-    def _put(self, name: str, level: str, codes: Array, figure: Array | None, margins: Margins) -> None:
-        known = self.found.get(name)
-        if known is None:
-            self.found[name] = _Limit(level, codes, figure, [margins])
-            return
-        takes = (known.codes == NO_VERDICT) | (codes == BROKEN)
-        known.codes = np.where(takes, codes, known.codes)
-        if figure is not None:
-            known.figure = figure if known.figure is None else np.where(takes, figure, known.figure)
-        known.margins.append(margins)
+            figure = checked_figure(check, values) if self._acceptances(check.id) else None
+            _put(found, check.id, check.limit.level, codes, figure, _margins_of(check, values))
 
     def _acceptances(self, name: str) -> list[Acceptance]:
         return [item for item in self.chain.calculation.accept if item.check == name]
 
-    def _with_acceptances(self, name: str, limit: _Limit) -> Array:
+    def _with_acceptances(self, name: str, limit: _Limit, condition: str) -> Array:
         """The codes with the engineer's acceptances; the first that holds for a sample settles it."""
         codes = limit.codes
         if limit.level == "stop" or limit.figure is None:
             return codes
         unsettled = np.ones(self.case_of.shape, dtype=bool)
         for item in self._acceptances(name):
-            everywhere = item.within in ("all", self.solution.condition)
+            everywhere = item.within in ("all", condition)
             applies = unsettled & (
                 everywhere | np.array([case == item.within for case in self.cases])[self.case_of]
             )
@@ -373,12 +359,34 @@ class _Limits:
         return codes
 
 
+def _put_wall(found: _Found, name: str, item: WallLimit, acts: Array) -> None:
+    codes = np.where(acts, _CODE_OF_STATE[item.states], NO_VERDICT)
+    _put(found, name, "range", codes, item.surface, _fixed_margins(item.margin))
+
+
+def _put(found: _Found, name: str, level: str, codes: Array, figure: Array | None, margins: Margins) -> None:
+    known = found.get(name)
+    if known is None:
+        found[name] = _Limit(level, codes, figure, [margins])
+        return
+    takes = (known.codes == NO_VERDICT) | (codes == BROKEN)
+    known.codes = np.where(takes, codes, known.codes)
+    if figure is not None:
+        known.figure = figure if known.figure is None else np.where(takes, figure, known.figure)
+    known.margins.append(margins)
+
+
+def _cut(figures: Array, samples: slice) -> Array:
+    """Some of a row of figures; one figure for all stays one."""
+    return figures[samples] if figures.ndim else figures
+
+
 def _margins_of(check: ChainCheck, values: Mapping[str, Array]) -> Margins:
     return lambda: check_margins(check, values)
 
 
-def _joined(margins: Sequence[Margins]) -> Margins:
-    return lambda: [figure for part in margins for figure in part()]
+def _joined(margins: Sequence[Margins], samples: slice = slice(None)) -> Margins:
+    return lambda: [_cut(np.asarray(figure), samples) for part in margins for figure in part()]
 
 
 # --- methods and the controlling term ---------------------------------------------------------------
