@@ -273,3 +273,28 @@ def test_references_are_numbered_within_their_card(water_cooler_text: str) -> No
 def test_texts_of_the_file_cannot_break_the_page(oven_wall_text: str) -> None:
     assert r"| Title | Oven \| wall \<b> |" in oven_wall_text
     assert r"\<script>" in section(oven_wall_text, 4)
+
+
+def _documents(text: str) -> dict[str, str]:
+    table = text.partition("### Documents")[2].partition("\n## ")[0]
+    rows = [line.strip("| ").split(" | ") for line in table.splitlines() if line.startswith("| ")]
+    return {row[0]: row[1] for row in rows if len(row) == 2}
+
+
+def _documents_of(name: str) -> dict[str, str]:
+    root = Path(__file__).resolve().parents[2] / "calcs"
+    return _documents(interface.record_text(interface.solve_file(root / name)))
+
+
+def test_limits_of_the_book_and_evidence_are_among_the_documents() -> None:
+    found = _documents_of("hr-821.yaml")
+    assert found["plant standard LM-PS-07"] == "limit of the book, excess surface: 40 %"
+    assert found["inspection report LM-IR-77"] == "evidence of assumption A1"
+
+
+def test_only_a_surface_that_stands_free_is_held_against_the_limit_of_the_book(water_cooler: Solved) -> None:
+    assert not any("limit of the book" in names for names in _documents(record_text(water_cooler)).values())
+    pipe, bank = _documents_of("sl-301.yaml"), _documents_of("ha-992.yaml")
+    assert "limit of the book, surface temperature: 60 degC" in pipe["site safety rule LM-HS-09"]
+    # Air is led past the finned bank inside a duct.
+    assert not any("surface temperature" in names for names in bank.values())

@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+from calcbook.calcfile.calculation import Value
 from calcbook.formulas.names import written_name
 from calcbook.record.blocks import Block, Heading, Paragraph, Table
 from calcbook.record.page import HOUSE_METHOD, Page, reference_id
+from calcbook.record.sections.review import can_be_touched
 
 
 def references(page: Page) -> list[Block]:
@@ -62,10 +64,24 @@ def _documents(page: Page) -> list[Block]:
     survey = page.calculation.survey
     for name, source in survey.sources.items() if survey is not None else ():
         found.setdefault(source, []).append(f"{name} of the survey")
+    for assumption in page.calculation.assumptions:
+        if assumption.is_verified:
+            found.setdefault(assumption.evidence, []).append(f"evidence of assumption {assumption.id}")
+    for name, limit in _limits_of_the_book(page).items():
+        found.setdefault(limit.source, []).append(f"limit of the book, {name}: {limit.text}")
     rows = tuple((source, "; ".join(names)) for source, names in found.items() if source)
     if not rows:
         return []
     return [Heading(3, "Documents"), Table(("Document", "What comes from it"), rows)]
+
+
+def _limits_of_the_book(page: Page) -> dict[str, Value]:
+    """The limits of the book that this calculation is held against."""
+    settings = page.calculation.settings
+    limits = {"excess surface": settings.excess_surface}
+    if can_be_touched(page):
+        limits["surface temperature"] = settings.surface_temperature
+    return {name: limit for name, limit in limits.items() if limit is not None}
 
 
 def sign_off(page: Page) -> list[Block]:

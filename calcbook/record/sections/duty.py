@@ -130,7 +130,8 @@ def _allowances(page: Page) -> list[Block]:
         Heading(3, "Largest allowances"),
         Paragraph(
             "The largest resistance of one fouling figure, on its own surface, with which the installed area still"
-            " carries the duty; the others stay as stated."
+            " carries the duty; the others stay as stated. The circuit is closed again with it: films and walls follow"
+            " their temperatures, so it is not just what 1/U_req leaves beside the resistances above."
         ),
         Table(("Fouling term", "On", f"Stated, {unit}", f"Largest, {unit}"), rows),
     ]

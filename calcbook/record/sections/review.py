@@ -282,7 +282,7 @@ def _preliminary(page: Page) -> list[str]:
 def _hot_surface(page: Page) -> list[str]:
     """Outer surfaces above the site's limit, by case and condition."""
     limit = page.calculation.settings.surface_temperature
-    if limit is None or limit.quantity is None or not _can_be_touched(page):
+    if limit is None or limit.quantity is None or not can_be_touched(page):
         return []
     lines = []
     for case in page.solved.cases:
@@ -297,7 +297,7 @@ def _hot_surface(page: Page) -> list[str]:
     return lines
 
 
-def _can_be_touched(page: Page) -> bool:
+def can_be_touched(page: Page) -> bool:
     """Whether the outside stands free: a flow that is led past it, or a vapour, is inside something itself."""
     situations = [branch.situation for branch in page.chain.outer.branches]
     return any(situation is None or situation.flow == "free" for situation in situations)
