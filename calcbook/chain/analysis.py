@@ -29,6 +29,7 @@ from calcbook.chain.findings import (
 )
 from calcbook.chain.fluids import PropertyOperation
 from calcbook.chain.gaps import PLACE, gaps, unused_steps, with_method
+from calcbook.chain.latent import PHASE_CHANGE
 from calcbook.chain.outcome import (
     BranchRow,
     CaseOutcome,
@@ -79,6 +80,11 @@ Array = np.ndarray
 CONTROLLING_SHARE = 0.5
 # Results that the rooms above make of a solved calculation: other calculations take them, no criterion can.
 LATER, LATER_STARTS = ("time_until_duty_lost", "cleaning_interval"), ("allowance_", "fitted ")
+# What the heat flow does to a stream, by the first word of the result: its quantity and what it is.
+IMPLIED = {
+    "dT": ("temperature difference", "temperature change of {} that the heat flow implies"),
+    PHASE_CHANGE: ("ratio", "part of the flow of {} that changes phase at the heat flow"),
+}
 PLACES_SPREAD = 0.2
 # Slopes below this part of U are the rounding of sums that cancel.
 NOISE = 1e-13
@@ -308,14 +314,13 @@ class _Analysis:
                     f"heat flow, {condition}",
                 )
         for name in table:
-            if name.startswith("dT "):
-                for condition, solution in reversed(list(solutions.items())):
-                    put(
-                        f"{name} {condition}",
-                        solution.figure(table[name]),
-                        "temperature difference",
-                        f"temperature change of {name.removeprefix('dT ')} that the heat flow implies, {condition}",
-                    )
+            kind, _, stream = name.partition(" ")
+            if kind not in IMPLIED:
+                continue
+            quantity, title = IMPLIED[kind]
+            for condition, solution in reversed(list(solutions.items())):
+                figures = solution.figure(table[name])
+                put(f"{name} {condition}", figures, quantity, f"{title.format(stream)}, {condition}")
         clean, service = (results[f"U_{condition}"].values for condition in CONDITIONS)
         put("cleanliness", service / clean, "ratio", "cleanliness, U_service/U_clean")
         put("excess_surface", clean / service - 1.0, "ratio", "excess surface, U_clean/U_service − 1")

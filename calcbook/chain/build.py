@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import replace
 
 from calcbook.calcfile import Calculation
@@ -15,6 +16,7 @@ from calcbook.chain.fins import FinnedSide, check_finned_situation, lay_out_fins
 from calcbook.chain.gaps import lay_out_gap
 from calcbook.chain.growth import Grown, GrownDeposit, lay_out_growth, lay_out_thickness
 from calcbook.chain.in_service import lay_out_in_service
+from calcbook.chain.latent import BECAUSE, PHASE_CHANGE, WHOLE_FLOW
 from calcbook.chain.petroleum import lay_out_cards
 from calcbook.chain.pressure import asked_symbols, lay_out_pressure_drop
 from calcbook.chain.scope import Scope, is_empty_source, unnamed_kind
@@ -154,30 +156,34 @@ class _Builder:
         return (*circuit, *added), {**results, **self.duty.results}
 
     def _heat_balance(self, elements: tuple[Element, ...], results: dict[str, str]) -> list[ChainCheck]:
-        """A caution where a stream would change its temperature by more than its stated mean can stand for."""
+        """A caution where a stream would change its temperature by more than its stated mean can stand for, and
+        where a saturated one would have to change more than its whole flow."""
         first, last = elements[0], elements[-1]
         assert isinstance(first, Group) and isinstance(last, Group)
-        limit = Limit(
+        place = self.calculation.place
+        practice = "common practice"
+        change = Limit(
             "temperature change",
             parse_expression("dT <= abs(T_in - T_out)/2"),
             "caution",
             "beyond it the stated means must come from the arrangement of the flows (logarithmic mean), and one state"
             " hardly stands for the stream",
-            "common practice",
-            "common practice",
-            self.calculation.place,
+            practice,
+            practice,
+            place,
         )
-        return [
-            ChainCheck(
-                f"{name.removeprefix('dT ')} / heat balance / temperature change",
-                name.removeprefix("dT "),
-                "heat balance",
-                limit,
-                {"dT": bound, "T_in": first.bulk, "T_out": last.bulk},
-            )
-            for name, bound in results.items()
-            if name.startswith("dT ")
-        ]
+        whole = Limit(
+            "phase change", parse_expression(WHOLE_FLOW), "caution", BECAUSE, practice, practice, place
+        )
+        checks = []
+        for name, bound in results.items():
+            kind, _, stream = name.partition(" ")
+            if kind == "dT":
+                inputs = {"dT": bound, "T_in": first.bulk, "T_out": last.bulk}
+                checks.append(_balance_check(stream, change, inputs))
+            elif kind == PHASE_CHANGE:
+                checks.append(_balance_check(stream, whole, {"x_pc": bound}))
+        return checks
 
     def _finished(
         self,
@@ -1255,6 +1261,10 @@ STATED = Method(
     house=False,
     where=Place("calculation file"),
 )
+
+
+def _balance_check(stream: str, limit: Limit, inputs: Mapping[str, str]) -> ChainCheck:
+    return ChainCheck(f"{stream} / heat balance / {limit.id}", stream, "heat balance", limit, inputs)
 
 
 def _steps_of(element: Element) -> tuple[ChainStep, ...]:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 
+from calcbook.chain.latent import PHASE_CHANGE, changed_part
 from calcbook.chain.scope import Scope
 from calcbook.chain.surfaces import Shape
 from calcbook.chain.types import ChainStep, Element, Group, Layer, StreamState
@@ -125,15 +126,21 @@ class Circuit:
             self._implied_changes()
 
     def _implied_changes(self) -> None:
-        """What the heat flow does to each stream of one phase whose mass flow is known: dT = Q/(m·cp).
+        """What the heat flow does to each stream whose mass flow is known: dT = Q/(m·cp), or to a saturated one the
+        part of it that changes phase, Q/(m·h_fg).
 
-        It stands beside the stated mean temperature, which it must not contradict.
+        It stands beside the stated mean temperature, which it must not contradict, and beside the stated flow.
         """
         for group in (self.elements[0], self.elements[-1]):
             assert isinstance(group, Group)
             for branch in group.branches:
                 stream = self.streams.get(branch.stream)
-                if branch.kind != "film" or stream is None or not stream.mass_flow or stream.is_saturated:
+                if branch.kind != "film" or stream is None or not stream.mass_flow:
+                    continue
+                if stream.is_saturated:
+                    self.results[f"{PHASE_CHANGE} {branch.stream}"] = changed_part(
+                        self.scope, stream, self.results["heat flow"], "circuit"
+                    )
                     continue
                 capacity = self.scope.step(
                     f"circuit/cp {branch.stream}",

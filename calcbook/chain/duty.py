@@ -13,6 +13,7 @@ import numpy as np
 
 from calcbook.calcfile.calculation import Duty, DutySide, Term
 from calcbook.chain.films import FilmScope
+from calcbook.chain.latent import BECAUSE, WHOLE_FLOW, changed_part, flow_needed
 from calcbook.chain.scope import Scope
 from calcbook.chain.solve import Solution
 from calcbook.chain.types import (
@@ -73,6 +74,7 @@ class DutyLayout:
     checks: list[ChainCheck] = field(default_factory=list)
     open_figures: list[OpenFigure] = field(default_factory=list)
     isothermal: str = ""
+    states: dict[str, StreamState] = field(default_factory=dict)
 
     # -- before the streams ---------------------------------------------------------------------------
 
@@ -113,6 +115,7 @@ class DutyLayout:
         for name, side in self.duty.sides.items():
             state = states[name]
             assert state is not None
+            self.states[name] = state
             if side.inlet is None and not self._is_isothermal(name, side, state):
                 return False
             if side.inlet is not None and state.is_saturated and state.pressure:
@@ -369,8 +372,11 @@ class DutyLayout:
             return False
         overall = circuit["U"]
         self.results["area installed"] = area
-        if self.is_by_effectiveness:
+        if not self.is_by_effectiveness:
+            self._changes_phase(self.results["duty"])
+        else:
             self._reached(overall, area)
+            self._changes_phase(self.results["heat reached"])
             for name in SIDES:
                 if name != self.isothermal:
                     self._found_outlet(name, self.results["heat reached"], SERVICE)
@@ -418,6 +424,16 @@ class DutyLayout:
         self._reached(overall, area)
         self._second_way(area)
         return True
+
+    def _changes_phase(self, heat: str) -> None:
+        """The flow of the saturated stream that the heat needs, beside the stated one."""
+        state = self.states.get(self.isothermal)
+        if state is None:
+            return
+        self.results["flow needed"] = flow_needed(self.scope, state, heat, OWNER)
+        if state.mass_flow:
+            changed = self.results["phase change"] = changed_part(self.scope, state, heat, OWNER)
+            self._check("heat balance / phase change", WHOLE_FLOW, "range", BECAUSE, {"x_pc": changed})
 
     def _streams_have_films(self, elements: tuple[Element, ...]) -> bool:
         groups = [element for element in elements if isinstance(element, Group)]
@@ -646,6 +662,13 @@ class DutyLayout:
 _RESULTS = (
     ("duty", "duty", "heat flow", "duty"),
     ("closure", "closure", "ratio", "closure error of the heat balances"),
+    ("flow_needed", "flow needed", "mass flow", "flow of the saturated stream that changes phase in service"),
+    (
+        "phase_change",
+        "phase change",
+        "ratio",
+        "part of the flow of the saturated stream that changes phase in service",
+    ),
     ("T_hot_outlet", "T hot outlet", "temperature", "outlet of the hot stream"),
     ("T_cold_outlet", "T cold outlet", "temperature", "outlet of the cold stream"),
     ("LMTD", "LMTD", "temperature difference", "logarithmic mean temperature difference"),

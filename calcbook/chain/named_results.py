@@ -15,7 +15,7 @@ from calcbook.chain.types import CLEAN, CONDITIONS, SERVICE, Chain, Group
 Array = np.ndarray
 RATIOS = ("cleanliness", "excess_surface")
 _WITH_CONDITION = re.compile(r"(U|UA|heat_flux|heat_flow)_(clean|service)(?: on (.+))?")
-_OF_TERM = re.compile(r"(T|h|R) (.+) (clean|service)")
+_OF_TERM = re.compile(r"(T|h|R|dT|phase_change) (.+) (clean|service)")
 _OF_STREAM = re.compile(r"(speed|Re) (.+)")
 _PRESSURE_DROP = re.compile(r"dp (.+)_(clean|service)")
 _IN_TABLE = {"U": "U", "UA": "UA", "heat_flux": "heat flux", "heat_flow": "heat flow"}

@@ -8,6 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from calcbook.chain.duty import duty_step
+from calcbook.chain.latent import PHASE_CHANGE
 from calcbook.chain.types import CONDITIONS, SERVICE, Chain
 from calcbook.formulas import Relation, evaluate, parse_expression, partial
 
@@ -77,7 +78,7 @@ def _names(key: str, condition: str) -> tuple[str, ...]:
         return (f"{key.replace(' ', '_')}_{condition}",)
     if key.startswith("U on "):
         return (f"U_{condition}{key[1:]}",)
-    if key.startswith(("h ", "R ", "dT ")) and key != "R total":
+    if key.startswith(("h ", "R ", "dT ", f"{PHASE_CHANGE} ")) and key != "R total":
         return (f"{key} {condition}",)
     return ()
 
