@@ -9,7 +9,7 @@ from pathlib import Path
 from typing import Any
 
 from calcbook.calcfile import Calculation, Settings, read_calculation, read_settings
-from calcbook.chain.analysis import NotConverged, analyse
+from calcbook.chain.analysis import NotConverged, analyse, judged_later
 from calcbook.chain.build import build
 from calcbook.chain.outcome import Solved
 from calcbook.chain.types import Chain
@@ -142,8 +142,11 @@ def _solved(
     if solved is None or collector:
         return None
     solved = _surveyed(_assessed(_followed(rated(solved)), collector), collector)
-    if solved is None or collector or not for_record:
-        return solved
+    if solved is None or collector:
+        return None
+    solved = judged_later(solved, collector)
+    if collector or not for_record:
+        return None if collector else solved
     solved = replace(solved, sweep=sweep_of(solved, axes, collector))
     return replace(solved, flips=distances_to_flip(solved)) if not collector else None
 

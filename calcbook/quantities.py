@@ -99,9 +99,13 @@ SI_DISPLAY: dict[str, str] = {
     "heat flow": "W",
     "heat flux": "W/m^2",
     "time": "s",
+    "service time": "days",
+    "cleaning interval": "days",
 }
 
 US_CUSTOMARY: dict[str, str] = {
+    "service time": "days",
+    "cleaning interval": "days",
     "temperature": "degF",
     "temperature difference": "degR",
     "pressure": "psia",

@@ -365,6 +365,10 @@ class Calculation:
     meaning: object
     place: Place
 
+    def criterion(self, name: str) -> Criterion:
+        """The acceptance criterion of a number, as `criterion 2`."""
+        return self.acceptance[int(name.removeprefix("criterion ")) - 1]
+
     @property
     def places(self) -> tuple[str, ...]:
         """The cases that are places along the unit."""

@@ -78,8 +78,14 @@ from calcbook.quantities import QuantityFault, QuantityKind, as_kind
 
 Array = np.ndarray
 CONTROLLING_SHARE = 0.5
-# Results that the rooms above make of a solved calculation: other calculations take them, no criterion can.
-LATER, LATER_STARTS = ("time_until_duty_lost", "cleaning_interval"), ("allowance_", "fitted ")
+DUTY_LOST = "time_until_duty_lost"
+# Results that the rooms above make of the solved base case, by how they start, with the key that asks for them.
+LATER = {
+    DUTY_LOST: "time in service",
+    "cleaning_interval": "cleaning",
+    "allowance_": "survey",
+    "fitted ": "survey",
+}
 # What the heat flow does to a stream, by the first word of the result: its quantity and what it is.
 IMPLIED = {
     "dT": ("temperature difference", "temperature change of {} that the heat flow implies"),
@@ -101,8 +107,17 @@ class NotConverged(Exception):
 
 
 def is_found_later(name: str) -> bool:
-    """Whether a result is found once from the solved calculation, after its criteria are judged."""
-    return name in LATER or name.startswith(LATER_STARTS)
+    """Whether a result is found once from the solved base case, and not sample by sample."""
+    return name.startswith(tuple(LATER))
+
+
+def judged_later(solved: Solved, collector: Collector) -> Solved:
+    """A solved calculation with the criteria over what was found from it, each in its place among the others."""
+    if not any(is_found_later(item.result) for item in solved.chain.calculation.acceptance):
+        return solved
+    base = solved.base
+    criteria = _Analysis(solved.chain, collector).criteria("", base.results, base.solutions, found_later=True)
+    return replace(solved, cases=(replace(base, criteria=criteria), *solved.cases[1:]))
 
 
 def analyse(chain: Chain, collector: Collector) -> Solved | None:
@@ -189,7 +204,7 @@ class _Analysis:
             if check.level == "stop" and check.state == "outside":
                 self._report_stop(check)
         # A number that a limit stops is not there to be judged.
-        criteria = () if self.collector else self._criteria(name, results, inputs, solutions)
+        criteria = () if self.collector else self.criteria(name, results, solutions)
         terms = {condition: self._terms(solution) for condition, solution in solutions.items()}
         controlling, share = _controlling(terms[SERVICE])
         return CaseOutcome(
@@ -676,29 +691,26 @@ class _Analysis:
             results += band_checks(self.chain, name, solution)
         return tuple(results)
 
-    def _criteria(
+    def criteria(
         self,
         case: str,
         results: Mapping[str, Result],
-        inputs: Mapping[str, np.ndarray],
         solutions: Mapping[str, Solution],
+        found_later: bool = False,
     ) -> tuple[CriterionResult, ...]:
+        """The criteria of a case in the order of the file; those over results that are found later when they are."""
         found = []
         for number, criterion in enumerate(self.chain.calculation.acceptance, 1):
+            later = is_found_later(criterion.result) and self._is_asked(criterion.result)
+            if later and not found_later:
+                continue
             result = results.get(criterion.result)
             if result is None:
-                if not case:
-                    later = is_found_later(criterion.result)
-                    self.collector.add(
-                        "result-unknown",
-                        criterion.place,
-                        f"`{shown(criterion.result)}` is found after the criteria are judged"
-                        if later
-                        else f"there is no result `{shown(criterion.result)}`",
-                        found=shown(criterion.result),
-                        expected=", ".join(results),
-                        nearest=nearest_names(criterion.result, results),
-                    )
+                judged = self._not_there(number, criterion, solutions) if later else None
+                if judged is not None:
+                    found.append(judged)
+                elif not case:
+                    self._report_unknown(criterion, results)
                 continue
             stated = self.limit_of(criterion, result.kind, solutions[SERVICE])
             if stated is None:
@@ -720,6 +732,59 @@ class _Analysis:
                 )
             )
         return tuple(found)
+
+    def _is_asked(self, name: str) -> bool:
+        """Whether the file asks for a result that is found later."""
+        calculation = self.chain.calculation
+        key = next(key for start, key in LATER.items() if name.startswith(start))
+        asked = {
+            "time in service": calculation.time_in_service is not None,
+            "cleaning": calculation.cleaning is not None,
+            "survey": calculation.survey is not None,
+        }
+        return asked[key]
+
+    def _not_there(
+        self, number: int, criterion: Criterion, solutions: Mapping[str, Solution]
+    ) -> CriterionResult | None:
+        """The criterion over a duty that is not lost, where the time that was looked at settles it; else None."""
+        stated = self.chain.calculation.time_in_service
+        if criterion.result != DUTY_LOST or stated is None:
+            return None
+        kind = vocabulary()["service time"]
+        limit = self.limit_of(criterion, kind, solutions[SERVICE])
+        until = solutions[SERVICE].number(self.chain.in_service["until"])
+        if limit is None or not until >= float(limit):
+            return None
+        return CriterionResult(
+            f"criterion {number}",
+            "",
+            criterion.text,
+            math.nan,
+            float(limit),
+            math.nan,
+            OPPOSITE[criterion.operator] > 0.0,
+            kind,
+            criterion.source,
+            f"the duty is not lost within {stated.until.text}",
+        )
+
+    def _report_unknown(self, criterion: Criterion, results: Mapping[str, Result]) -> None:
+        name = shown(criterion.result)
+        start = next((start for start in LATER if criterion.result.startswith(start)), "")
+        message = f"there is no result `{name}`"
+        if start and self._is_asked(criterion.result):
+            message = f"`{name}` was not found: it is later than the time looked at, or there is none"
+        elif start:
+            message = f"`{name}` is found only where the file has `{LATER[start]}:`"
+        self.collector.add(
+            "result-unknown",
+            criterion.place,
+            message,
+            found=name,
+            expected=", ".join(results),
+            nearest=nearest_names(criterion.result, results),
+        )
 
     def limit_of(self, criterion: Criterion, kind: QuantityKind, solution: Solution) -> Array | None:
         """The limit of a criterion at every sample; None after a fault."""

@@ -43,7 +43,10 @@ class CheckResult(NamedTuple):
 
 
 class CriterionResult(NamedTuple):
-    """An acceptance criterion: met or not met, with its margin (value less limit, in the direction that is good)."""
+    """An acceptance criterion: met or not met, with its margin (value less limit, in the direction that is good).
+
+    ``words`` stand in place of a value that is not there and yet settles the criterion; value and margin are NaN then.
+    """
 
     id: str
     case: str
@@ -54,6 +57,7 @@ class CriterionResult(NamedTuple):
     met: bool
     kind: QuantityKind
     source: str
+    words: str = ""
 
 
 class Result(NamedTuple):

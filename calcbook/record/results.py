@@ -165,6 +165,7 @@ def _criterion(item: CriterionResult) -> Data:
         "met": item.met,
         "margin": rounded(item.margin),
         "source": item.source,
+        **({"words": item.words} if item.words else {}),
     }
 
 

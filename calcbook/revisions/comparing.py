@@ -247,7 +247,8 @@ def _criteria_by_name(solved: Solved) -> dict[str, CriterionResult]:
     named: dict[str, CriterionResult] = {}
     for case in solved.cases:
         seen: dict[str, int] = {}
-        for stated, item in zip(solved.chain.calculation.acceptance, case.criteria, strict=False):
+        for item in case.criteria:
+            stated = solved.chain.calculation.criterion(item.id)
             key = f"{stated.result} {stated.operator}"
             seen[key] = seen.get(key, 0) + 1
             named[f"{key} / {seen[key]} / {case.name}"] = item
@@ -265,8 +266,9 @@ def _against(item: CriterionResult | None, report: Report) -> str:
     if item is None:
         return ""
     unit = report_unit(item.kind, report)
-    value, limit = apart(item.value, item.limit, unit, item.kind.scale == "point", PLAIN_DIGITS)
-    return f"{value} against {with_unit(limit, unit_text(unit))}"
+    figure = item.limit if item.words else item.value
+    value, limit = apart(figure, item.limit, unit, item.kind.scale == "point", PLAIN_DIGITS)
+    return f"{item.words or value} against {with_unit(limit, unit_text(unit))}"
 
 
 def check_flips(old: Solved, new: Solved) -> tuple[Verdict, ...]:

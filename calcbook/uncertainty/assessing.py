@@ -9,6 +9,7 @@ from dataclasses import replace
 import numpy as np
 
 from calcbook.calcfile.uncertainty import USUAL_COVERAGE, UncertaintyText
+from calcbook.chain.analysis import is_found_later
 from calcbook.chain.factors import with_factors
 from calcbook.chain.outcome import CaseOutcome, Result, Solved
 from calcbook.chain.sensitivity import derivatives
@@ -273,12 +274,9 @@ class _Assessment:
         """
         statements: list[Statement] = []
         texts: dict[str, tuple[str, bool]] = {}
-        not_sampled = []
-        stated = {
-            f"criterion {place}": item for place, item in enumerate(self.chain.calculation.acceptance, 1)
-        }
+        not_sampled = [item.text for item in self.chain.calculation.acceptance if is_found_later(item.result)]
         for row in self.case.criteria:
-            item = stated[row.id]
+            item = self.chain.calculation.criterion(row.id)
             result = measured(self.chain, item.result)
             if result is None:
                 not_sampled.append(row.that)

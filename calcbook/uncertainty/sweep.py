@@ -102,7 +102,7 @@ def _result(solved: Solved, result: Result, samples: Samples) -> SweptResult:
         else np.full(samples.missing.shape, np.nan)
     )
     values = np.where(samples.missing == 0, values, np.nan)
-    stated = zip(solved.base.criteria, solved.chain.calculation.acceptance, strict=False)
+    stated = [(item, solved.chain.calculation.criterion(item.id)) for item in solved.base.criteria]
     limits = tuple(
         (item.id, item.limit)
         for item, criterion in stated

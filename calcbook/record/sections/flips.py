@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 
+from calcbook.chain.analysis import is_found_later
 from calcbook.chain.flips_outcome import CONTROLLING, CRITERION, LIMIT, METHOD, Flip, Flips, Searched
 from calcbook.formulas.names import written_name
 from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Table
@@ -48,13 +49,16 @@ def flips(page: Page) -> list[Block]:
 
 
 def _alone(page: Page) -> list[Block]:
-    """What moves with a figure that is changed alone, where an engineer would not expect it."""
+    """What moves with a figure that is changed alone, where an engineer would not expect it, and what is left out."""
     notes = []
     if page.result("closure") is not None:
         notes.append(
             "A flow or an end of the duty changed alone opens the heat balance: the duty is the mean of both streams,"
             " and the limits of its closure stand among the limits below."
         )
+    later = [item.text for item in page.calculation.acceptance if is_found_later(item.result)]
+    if later:
+        notes.append(f"What is found once from the solved calculation is not searched: {'; '.join(later)}.")
     geometry = page.calculation.geometry
     if geometry is not None and {"inside diameter", "outside diameter"} <= set(geometry.dimensions):
         notes.append("A diameter changed alone changes the thickness of the wall with it.")

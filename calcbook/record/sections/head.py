@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from calcbook.chain.analysis import is_found_later
 from calcbook.chain.outcome import CaseOutcome, CriterionResult
 from calcbook.chain.pressure import drops
 from calcbook.record.blocks import Block, Heading, Paragraph, Quote, Table
@@ -167,18 +168,18 @@ def criterion_row(item: CriterionResult, page: Page) -> tuple[str, ...]:
     """A criterion with the figures that show its verdict."""
     unit = report_unit(item.kind, page.calculation.report)
     point = item.kind.scale == "point"
-    value, limit = apart(item.value, item.limit, unit, point, PLAIN_DIGITS)
+    shown = unit_text(unit)
+    value, limit = apart(item.limit if item.words else item.value, item.limit, unit, point, PLAIN_DIGITS)
     verdict = "criterion met" if item.met else "criterion not met"
     if not item.case:
         verdict += certainty_words(page.solved.uncertainty, item)
-    shown = unit_text(unit)
     return (
         item.id,
         case_name(item.case),
         item.that,
-        with_unit(value, shown),
+        item.words or with_unit(value, shown),
         with_unit(limit, shown),
-        _margin(item, page),
+        "not known" if item.words else _margin(item, page),
         verdict,
         item.source or "no source",
     )
@@ -202,7 +203,8 @@ def _governing(page: Page) -> list[Block]:
     if not governing:
         return []
     case = next(case for case in page.solved.cases if case_name(case.name) == governing)
-    criterion = page.calculation.acceptance[0] if page.calculation.acceptance else None
+    judged = [item for item in page.calculation.acceptance if not is_found_later(item.result)]
+    criterion = judged[0] if judged else None
     rule = f"smallest margin of {criterion.text}" if criterion is not None else "lowest U in service"
     result = case.results["U_service"]
     value = in_report_unit(result.value, result.kind, page.calculation.report, CONCLUSION_DIGITS)

@@ -1,0 +1,94 @@
+"""Criteria over what is found once from the solved calculation: the time until the duty is lost, intervals, allowances."""
+
+from __future__ import annotations
+
+import math
+from pathlib import Path
+
+import pytest
+from test_time_in_service import COOLER as WITH_TABLE
+from test_time_in_service import TABLE, money, solved
+
+from calcbook.chain.outcome import CriterionResult, Solved
+from calcbook.faults import Faults
+from calcbook.interface import record_text
+from calcbook.record import digest_of, results_data, software_of
+
+LOST = "time_until_duty_lost"
+COOLER = WITH_TABLE.partition("time in service:")[0]
+
+
+def stated(*criteria: str) -> str:
+    lines = "".join(f"  - {{that: {that}, source: test}}\n" for that in criteria)
+    return f"acceptance:\n{lines}"
+
+
+def judged(solution: Solved) -> list[CriterionResult]:
+    return list(solution.base.criteria)
+
+
+@pytest.fixture
+def days(tmp_path: Path) -> float:
+    """The time until the duty of the cooler is lost, in days."""
+    return solved(tmp_path, COOLER + TABLE).base.results[LOST].value / 86400.0
+
+
+def test_criteria_stand_in_the_order_of_the_file(tmp_path: Path, days: float) -> None:
+    criteria = (
+        f"{LOST} >= {days - 1:.3f} days",
+        "U_service >= 1 W/(m^2 K)",
+        f"{LOST} >= {days + 1:.3f} days",
+    )
+    result = solved(tmp_path, COOLER + TABLE + stated(*criteria))
+    found = judged(result)
+    assert [(item.id, item.that, item.met) for item in found] == [
+        ("criterion 1", criteria[0], True),
+        ("criterion 2", criteria[1], True),
+        ("criterion 3", criteria[2], False),
+    ]
+    assert found[0].margin == pytest.approx(86400.0, rel=1e-3)
+    text = record_text(result)
+    assert f"criterion 3 is not met in case base: {criteria[2]}." in text
+    assert "What is found once from the solved calculation is not searched" in text
+    # The distance to flip and the samples keep to the criteria that they can ask.
+    assert result.flips is not None
+    assert {flip.id for flip in result.flips.of_kind("criterion")} <= {"criterion 2"}
+
+
+def test_an_interval_is_judged(tmp_path: Path) -> None:
+    body = COOLER + money(9000, 28)
+    interval = solved(tmp_path, body).base.results["cleaning_interval"].value / 86400.0
+    result = solved(tmp_path, body + stated(f"cleaning_interval >= {interval + 1:.3f} days"))
+    assert [item.met for item in judged(result)] == [False]
+
+
+@pytest.mark.parametrize(("operator", "met"), [(">=", True), (">", True), ("<=", False)])
+def test_a_duty_that_is_not_lost_within_the_time_settles_a_shorter_one(
+    tmp_path: Path, days: float, operator: str, met: bool
+) -> None:
+    until = math.floor(0.5 * days)
+    body = COOLER + f"time in service: {{until: {until} days, steps: 5}}\n"
+    result = solved(tmp_path, body + stated(f"{LOST} {operator} {until - 3} days"))
+    (item,) = judged(result)
+    assert (item.met, item.words) == (met, f"the duty is not lost within {until} days")
+    row = next(line for line in record_text(result).splitlines() if line.startswith("| criterion 1 |"))
+    assert f"| the duty is not lost within {until} days |" in row and "| not known |" in row
+    digest = digest_of(result)
+    (data,) = results_data(result, digest, software_of(digest))["acceptance"]
+    assert data["value"] is None and data["margin"] is None and data["words"] == item.words
+
+
+def test_a_time_beyond_what_was_looked_at_is_a_fault(tmp_path: Path, days: float) -> None:
+    until = math.floor(0.5 * days)
+    body = COOLER + f"time in service: {{until: {until} days, steps: 5}}\n"
+    with pytest.raises(Faults, match="later than the time looked at"):
+        solved(tmp_path, body + stated(f"{LOST} >= {until + 3} days"))
+
+
+def test_a_result_that_the_file_does_not_ask_for_says_by_which_key(tmp_path: Path) -> None:
+    for name, limit, key in (
+        (LOST, "3 days", "time in service"),
+        ("allowance_proposed", "1 m^2 K/W", "survey"),
+    ):
+        with pytest.raises(Faults, match=f"only where the file has `{key}:`"):
+            solved(tmp_path, COOLER + stated(f"{name} >= {limit}"))
