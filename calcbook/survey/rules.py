@@ -17,6 +17,7 @@ from calcbook.quantities import unit_factor
 from calcbook.survey.rows import Rows
 
 Array = np.ndarray
+UNREADABLE = "unreadable"
 NOT_APPLIED = "not applied: no limit is stated"
 FLOWS = frozenset(unit_factor(unit)[1] for unit in ("kg/s", "m^3/s", "m/s"))
 
@@ -82,7 +83,7 @@ def sift(rows: Rows, survey: Survey, ends: Ends, reference: Mapping[str, float])
     readable = np.isfinite(rows.times)
     for figures in rows.columns.values():
         readable &= np.isfinite(figures)
-    sieve.reject("unreadable", "a cell that is empty, no number or no time", "every cell a number", ~readable)
+    sieve.reject(UNREADABLE, "a cell that is empty, no number or no time", "every cell a number", ~readable)
     sieve.reject(
         "duplicate time stamp",
         "a time that a row above has",

@@ -32,7 +32,7 @@ from calcbook.survey.fitting import Data, Fit, fit, sample
 from calcbook.survey.growth import GrowthModel, growth_model
 from calcbook.survey.resistance import CARD, Found, relations_of, resistances, slopes
 from calcbook.survey.rows import Rows, moment_text, read_rows
-from calcbook.survey.rules import Ends, Sieve, sift
+from calcbook.survey.rules import UNREADABLE, Ends, Sieve, sift
 
 Array = np.ndarray
 # Slopes are taken at so many rows, spread evenly over all: what is wrong in every row alike moves neighbours alike.
@@ -42,6 +42,8 @@ PLOT_COLUMNS = 72
 FEWEST_FREE = 5
 ALLOWANCE = "allowance_fitted"
 ONE_SIDED = "not applied: only one stream shows its heat"
+# Beyond this part of all rows it is not single cells that cannot be read.
+MANY_UNREADABLE = 0.5
 # How far beyond the longest time since a cleaning in the rows a model may be used without a caution.
 REACH, PERIOD = "1.5", "t_data"
 
@@ -471,12 +473,24 @@ class _Survey:
         return found
 
     def open_items(self, outcome: SurveyOutcome) -> tuple[OpenItem, ...]:
-        """Figures without a source, and a model that the data do not determine."""
-        return tuple(
+        """Figures without a source, rows that cannot be read, and a model that the data do not determine."""
+        without_source = [
             OpenItem(f"survey/{name}/source", "source", f"What the survey states under {name} has no source.")
             for name, source in self.survey.sources.items()
             if source.strip(" .").casefold() in EMPTY_SOURCES
-        ) + self.fit_items(outcome)
+        ]
+        return (*without_source, *self.row_items(outcome), *self.fit_items(outcome))
+
+    def row_items(self, outcome: SurveyOutcome) -> tuple[OpenItem, ...]:
+        """A history most of whose rows cannot be read: its columns may not be what the mapping takes them for."""
+        count = next(rule.count for rule in outcome.rules if rule.id == UNREADABLE)
+        if not count > MANY_UNREADABLE * outcome.rows:
+            return ()
+        text = (
+            f"{count} of {outcome.rows} rows of the history cannot be read: columns, decimal marks or times may be"
+            " others than the survey states."
+        )
+        return (OpenItem("survey/unreadable rows", "check", text),)
 
     def limit_items(self, checks: tuple[CheckResult, ...]) -> tuple[OpenItem, ...]:
         """Stop and range limits of the survey that do not hold; the rules and the model are the cure."""

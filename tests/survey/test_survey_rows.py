@@ -73,6 +73,22 @@ def test_the_rule_names_the_first_row_it_rejects(outcome_of: Outcomes, whole: li
     assert next(rule.first for rule in outcome.rules if rule.id == "unreadable") == "row 21"
 
 
+def test_a_history_that_mostly_cannot_be_read_is_an_open_item(
+    tmp_path: Path, solved: Solved, whole: list[list[str]]
+) -> None:
+    for spoilt, told in ((0.4, False), (0.6, True)):
+        rows = [list(row) for row in whole]
+        count = round(spoilt * len(rows))
+        # Every second row first, so that each cleaning keeps rows enough for its zero.
+        order = [*range(1, len(rows), 2), *range(0, len(rows), 2)]
+        for place in order[:count]:
+            rows[place][3] = rows[place][3].replace(".", ",")
+        items = surveyed_alone(tmp_path, solved, rows, SPOILED_SURVEY).open_items
+        texts = [item.text for item in items if item.id == "survey/unreadable rows"]
+        assert bool(texts) == told
+        assert not texts or texts[0].startswith(f"{count} of {len(rows)} rows of the history cannot be read")
+
+
 @pytest.mark.parametrize("seed", range(6))
 def test_no_row_is_dropped_in_silence(outcome_of: Outcomes, whole: list[list[str]], seed: int) -> None:
     draw = np.random.default_rng(seed)
