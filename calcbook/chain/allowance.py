@@ -31,7 +31,8 @@ def largest_allowances(
 ) -> dict[str, Array]:
     """Largest resistance on its own surface by term name, the others as stated, m² K/W, in the samples' shape.
 
-    Terms that share a figure are joined by a comma. NaN where the duty is not carried even without the term.
+    Terms that share a figure are joined by a comma. Where the duty is not carried even without the term, the figure is
+    below zero: by so much the other resistances are too large.
     ``service`` is the solution of ``inputs``, which leave nothing open; ``thorough`` is that of ``solve``.
     """
     if "U required" not in chain.results:
@@ -89,7 +90,9 @@ def _largest(
             start=None if unknowns is None else unknowns[:, ~agreed],
         )
         there = solution.figure(chain.results["U"])
-        going_on = np.isfinite(there) & ((resistance > 0.0) | (there >= needed[active]))
+        lacking = (resistance == 0.0) & (there < needed[active])
+        result[active[lacking]] = ((1.0 / needed[active] - 1.0 / there) / weight[active])[lacking]
+        going_on = np.isfinite(there) & ~lacking
         active, resistance, there = active[going_on], resistance[going_on], there[going_on]
         unknowns = None if solution.unknowns is None else solution.unknowns[:, going_on]
         if not len(active):

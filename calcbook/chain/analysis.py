@@ -89,7 +89,10 @@ LATER = {
 # What the heat flow does to a stream, by the first word of the result: its quantity and what it is.
 IMPLIED = {
     "dT": ("temperature difference", "temperature change of {} that the heat flow implies"),
-    PHASE_CHANGE: ("ratio", "part of the flow of {} that changes phase at the heat flow"),
+    PHASE_CHANGE: (
+        "ratio",
+        "part of the flow of {} that its heat balance changes from one phase to the other",
+    ),
 }
 PLACES_SPREAD = 0.2
 # Slopes below this part of U are the rounding of sums that cancel.
@@ -136,6 +139,8 @@ class _Analysis:
         self.dimensions = dict(chain.dimensions)
         self.used_cards: dict[str, str] = dict(chain.cards)
         self.inputs: dict[str, dict[str, np.ndarray]] = {}
+        # The named results of the base case, which is solved first.
+        self.results: dict[str, Result] = {}
 
     def solved(self) -> Solved | None:
         names = ("", *self.chain.calculation.cases)
@@ -199,6 +204,7 @@ class _Analysis:
         ends = closed_ends(end_states(self.chain, inputs, solutions))
         results = self._results(solutions, inputs)
         results |= _single(surfaces_at_ends(ends))
+        self.results = self.results or results
         checks = (*self._checks(name, solutions), *end_checks(ends, name))
         for check in checks:
             if check.level == "stop" and check.state == "outside":
@@ -262,12 +268,13 @@ class _Analysis:
                         return
 
     def _report_stop(self, check: CheckResult) -> None:
-        term = next((term for term in self.chain.calculation.resistances if term.name == check.owner), None)
-        place = term.place if term is not None else self.chain.calculation.place
         calculation = self.chain.calculation
+        places = {name: stream.place for name, stream in self.chain.streams.items()}
+        places |= {term.name: term.place for term in calculation.resistances}
         for owner, part in ((DUTY, calculation.duty), (SPECIFIED, calculation.fouling_specified)):
-            if check.owner == owner and part is not None:
-                place = part.place
+            if part is not None:
+                places[owner] = part.place
+        place = places.get(check.owner, calculation.place)
         self.collector.add(
             "limit-stops",
             place,
@@ -706,7 +713,10 @@ class _Analysis:
                 continue
             result = results.get(criterion.result)
             if result is None:
-                judged = self._not_there(number, criterion, solutions) if later else None
+                if later:
+                    judged = self._not_lost(number, criterion, solutions)
+                else:
+                    judged = self._without_value(number, criterion, case, solutions)
                 if judged is not None:
                     found.append(judged)
                 elif not case:
@@ -744,7 +754,28 @@ class _Analysis:
         }
         return asked[key]
 
-    def _not_there(
+    def _without_value(
+        self, number: int, criterion: Criterion, case: str, solutions: Mapping[str, Solution]
+    ) -> CriterionResult | None:
+        """A criterion over a result that the base case has and a named case has not: it is not met there."""
+        base = self.results.get(criterion.result)
+        limit = self.limit_of(criterion, base.kind, solutions[SERVICE]) if base is not None else None
+        if base is None or limit is None:
+            return None
+        return CriterionResult(
+            f"criterion {number}",
+            case,
+            criterion.text,
+            math.nan,
+            float(limit),
+            math.nan,
+            False,
+            base.kind,
+            criterion.source,
+            "there is no value in this case",
+        )
+
+    def _not_lost(
         self, number: int, criterion: Criterion, solutions: Mapping[str, Solution]
     ) -> CriterionResult | None:
         """The criterion over a duty that is not lost, where the time that was looked at settles it; else None."""
@@ -1073,7 +1104,8 @@ def allowance_figures(
         LARGEST_ALLOWANCE + name: ResultFigures(
             values,
             vocabulary()["area resistance"],
-            f"largest resistance of {name} with which the installed area carries the duty",
+            f"largest resistance of {name} with which the installed area carries the duty; below zero the resistance that"
+            " is too much without it",
         )
         for name, values in largest_allowances(chain, inputs, service, thorough).items()
     }
@@ -1106,6 +1138,11 @@ def criterion_met(criterion: Criterion, margin: Array | float) -> Array:
 
 
 # --- small helpers ----------------------------------------------------------------------------------
+
+
+def _least_margin(item: CriterionResult) -> float:
+    """The margin by which cases are compared: one without a value is worse than any."""
+    return -math.inf if math.isnan(item.margin) else item.margin
 
 
 def _single(figures: Mapping[str, ResultFigures]) -> dict[str, Result]:
@@ -1243,5 +1280,5 @@ def _governing(cases: list[CaseOutcome], places: tuple[str, ...] = ()) -> str:
     if len(cases) == 1:
         return ""
     if all(case.criteria for case in cases):
-        return min(cases, key=lambda case: case.criteria[0].margin).name or "base"
+        return min(cases, key=lambda case: _least_margin(case.criteria[0])).name or "base"
     return min(cases, key=lambda case: case.results["U_service"].value).name or "base"

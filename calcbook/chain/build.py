@@ -16,7 +16,7 @@ from calcbook.chain.fins import FinnedSide, check_finned_situation, lay_out_fins
 from calcbook.chain.gaps import lay_out_gap
 from calcbook.chain.growth import Grown, GrownDeposit, lay_out_growth, lay_out_thickness
 from calcbook.chain.in_service import lay_out_in_service
-from calcbook.chain.latent import BECAUSE, PHASE_CHANGE, WHOLE_FLOW
+from calcbook.chain.latent import BECAUSE, NO_FLOW, PHASE_CHANGE, SOME_FLOW, WHOLE_FLOW
 from calcbook.chain.petroleum import lay_out_cards
 from calcbook.chain.pressure import asked_symbols, lay_out_pressure_drop
 from calcbook.chain.scope import Scope, is_empty_source, unnamed_kind
@@ -175,6 +175,7 @@ class _Builder:
         whole = Limit(
             "phase change", parse_expression(WHOLE_FLOW), "caution", BECAUSE, practice, practice, place
         )
+        flow = Limit("flow", parse_expression(SOME_FLOW), "stop", NO_FLOW, practice, practice, place)
         checks = []
         for name, bound in results.items():
             kind, _, stream = name.partition(" ")
@@ -182,6 +183,7 @@ class _Builder:
                 inputs = {"dT": bound, "T_in": first.bulk, "T_out": last.bulk}
                 checks.append(_balance_check(stream, change, inputs))
             elif kind == PHASE_CHANGE:
+                checks.append(_balance_check(stream, flow, {"m": self.streams[stream].mass_flow}))
                 checks.append(_balance_check(stream, whole, {"x_pc": bound}))
         return checks
 

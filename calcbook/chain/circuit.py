@@ -135,12 +135,14 @@ class Circuit:
             assert isinstance(group, Group)
             for branch in group.branches:
                 stream = self.streams.get(branch.stream)
-                if branch.kind != "film" or stream is None or not stream.mass_flow:
+                if stream is None or not stream.mass_flow:
                     continue
                 if stream.is_saturated:
                     self.results[f"{PHASE_CHANGE} {branch.stream}"] = changed_part(
                         self.scope, stream, self.results["heat flow"], "circuit"
                     )
+                    continue
+                if branch.kind != "film":
                     continue
                 capacity = self.scope.step(
                     f"circuit/cp {branch.stream}",

@@ -13,7 +13,15 @@ import numpy as np
 
 from calcbook.calcfile.calculation import Duty, DutySide, Term
 from calcbook.chain.films import FilmScope
-from calcbook.chain.latent import BECAUSE, WHOLE_FLOW, changed_part, flow_needed
+from calcbook.chain.latent import (
+    BECAUSE,
+    NO_FLOW,
+    PHASE_CHANGE,
+    SOME_FLOW,
+    WHOLE_FLOW,
+    changed_part,
+    flow_needed,
+)
 from calcbook.chain.scope import Scope
 from calcbook.chain.solve import Solution
 from calcbook.chain.types import (
@@ -187,9 +195,9 @@ class DutyLayout:
         )
         self._check(
             f"ends / {name} flow",
-            "m > 0",
+            SOME_FLOW,
             "stop",
-            "a stream without flow carries no heat",
+            NO_FLOW,
             {"m": state.mass_flow},
         )
 
@@ -432,7 +440,9 @@ class DutyLayout:
             return
         self.results["flow needed"] = flow_needed(self.scope, state, heat, OWNER)
         if state.mass_flow:
-            changed = self.results["phase change"] = changed_part(self.scope, state, heat, OWNER)
+            changed = changed_part(self.scope, state, heat, OWNER)
+            self.results[f"{PHASE_CHANGE} {state.name}"] = changed
+            self._check(f"ends / {self.isothermal} flow", SOME_FLOW, "stop", NO_FLOW, {"m": state.mass_flow})
             self._check("heat balance / phase change", WHOLE_FLOW, "range", BECAUSE, {"x_pc": changed})
 
     def _streams_have_films(self, elements: tuple[Element, ...]) -> bool:
@@ -662,13 +672,7 @@ class DutyLayout:
 _RESULTS = (
     ("duty", "duty", "heat flow", "duty"),
     ("closure", "closure", "ratio", "closure error of the heat balances"),
-    ("flow_needed", "flow needed", "mass flow", "flow of the saturated stream that changes phase in service"),
-    (
-        "phase_change",
-        "phase change",
-        "ratio",
-        "part of the flow of the saturated stream that changes phase in service",
-    ),
+    ("flow_needed", "flow needed", "mass flow", "flow of the saturated stream that its heat balance needs"),
     ("T_hot_outlet", "T hot outlet", "temperature", "outlet of the hot stream"),
     ("T_cold_outlet", "T cold outlet", "temperature", "outlet of the cold stream"),
     ("LMTD", "LMTD", "temperature difference", "logarithmic mean temperature difference"),

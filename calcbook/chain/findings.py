@@ -79,13 +79,13 @@ def stream_findings(
         items += _state_items(state, fluid, temperature, state.phase, "", case, collector)
         # A stream keeps the phase of its mean from end to end: one that changes it on the way is another duty.
         phase = state.phase or fluid.phase_at(temperature)
-        for place, bound in _ends_of(chain, state.name):
+        for place, bound in ends_of(chain, state.name):
             items += _state_items(state, fluid, float(values[bound]), phase, place, case, collector)
     _check_gaps(chain, values, collector, case)
     return tuple(items)
 
 
-def _ends_of(chain: Chain, stream: str) -> list[tuple[str, str]]:
+def ends_of(chain: Chain, stream: str) -> list[tuple[str, str]]:
     """The ends of a stream of the duty: where, and the id of the temperature there."""
     duty = chain.calculation.duty
     return [

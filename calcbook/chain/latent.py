@@ -9,11 +9,12 @@ from calcbook.formulas import parse_expression
 from calcbook.library import vocabulary
 
 PHASE_CHANGE = "phase_change"
-WHOLE_FLOW = "x_pc <= 1"
+WHOLE_FLOW, SOME_FLOW = "x_pc <= 1", "m > 0"
 BECAUSE = (
-    "a saturated stream gives or takes no more heat than its whole flow does when it changes phase; beyond it part of"
-    " the unit is without it"
+    "a saturated stream gives or takes no more heat than its whole flow does from one side of saturation to the other;"
+    " beyond it part of the unit is without it"
 )
+NO_FLOW = "a stream without flow carries no heat"
 
 
 def changed_part(scope: Scope, stream: StreamState, heat: str, owner: str) -> str:

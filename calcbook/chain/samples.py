@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable, Iterator, Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
@@ -33,6 +33,7 @@ from calcbook.chain.completing import completed
 from calcbook.chain.ends import EndState, end_states, id_at
 from calcbook.chain.findings import (
     WallLimit,
+    ends_of,
     film_steps,
     known_or_none,
     stream_phases,
@@ -470,14 +471,18 @@ def _mark_states(
     for state in chain.streams.values():
         if state.temperature not in values:
             continue
-        states, place = stream_states(state, values)
-        words = [_state_fault(state, *figures) for figures in states]
-        for reason in dict.fromkeys(word for word in words if word):
-            samples.mark(np.array([word == reason for word in words])[place], f"{state.name}: {reason}")
+        _mark_faults(state, state.name, state.phase, values, samples)
         if state.name in phases:
             known, which = stream_phases(state, values)
             other = np.array([phase for phase, *_ in known])[which] != np.array(phases[state.name])[case_of]
             samples.mark(other, f"{state.name} has another phase")
+        # A stream keeps the phase of its mean from end to end.
+        for place, temperature in ends_of(chain, state.name):
+            at_end = replace(state, temperature=temperature)
+            for phase in dict.fromkeys(phases.get(state.name, (state.phase,))):
+                own = np.array([one == phase for one in phases.get(state.name, (phase,))])
+                acts = own[case_of] if state.name in phases else np.ones(case_of.shape, dtype=bool)
+                _mark_faults(at_end, f"{state.name}{place}", phase, values, samples, acts)
     for here, opposite in ((chain.inner, chain.outer), (chain.outer, chain.inner)):
         mark_directions(here, opposite, values, samples)
 
@@ -503,7 +508,42 @@ def mark_directions(here: Group, opposite: Group, values: Mapping[str, Array], s
             )
 
 
-def _state_fault(state: StreamState, temperature: float, pressure: float, fraction: float) -> str:
+def _mark_faults(
+    state: StreamState,
+    name: str,
+    phase: str,
+    values: Mapping[str, Array],
+    samples: Samples,
+    acts: Array | None = None,
+) -> None:
+    """Mark the samples whose state is a fault in a phase (empty: as it is found); ``acts`` are those looked at."""
+    states, place = stream_states(state, values)
+    words = _state_faults(state, states, phase)
+    for reason in dict.fromkeys(word for word in words if word):
+        wrong = np.array([word == reason for word in words])[place]
+        samples.mark(wrong if acts is None else wrong & acts, f"{name}: {reason}")
+
+
+def _state_faults(state: StreamState, states: Sequence[tuple[float, float, float]], phase: str) -> list[str]:
+    """The words of the fault of every state, empty for a good one.
+
+    Along one pressure the good temperatures are one stretch: it is looked for from both ends.
+    """
+    words = [""] * len(states)
+    groups: dict[tuple[str, str], list[int]] = {}
+    for number, (_, pressure, fraction) in enumerate(states):
+        groups.setdefault((repr(pressure), repr(fraction)), []).append(number)
+    for numbers in groups.values():
+        numbers.sort(key=lambda number: states[number][0])
+        for order in (numbers, numbers[::-1]):
+            for number in order:
+                words[number] = words[number] or _state_fault(state, *states[number], phase)
+                if not words[number] and not math.isnan(states[number][0]):
+                    break
+    return words
+
+
+def _state_fault(state: StreamState, temperature: float, pressure: float, fraction: float, phase: str) -> str:
     """The words of a fault of a bulk state, empty for a good one."""
     try:
         fluid = state.fluid.state(known_or_none(pressure), known_or_none(fraction), state.phase)
@@ -511,7 +551,7 @@ def _state_fault(state: StreamState, temperature: float, pressure: float, fracti
         return error.code.replace("-", " ")
     if math.isnan(temperature):
         return "no saturation temperature" if state.saturation else ""
-    for finding in fluid.check_state(temperature, state.phase or None):
+    for finding in fluid.check_state(temperature, phase or None):
         if finding.level == "fault":
             return finding.code.replace("-", " ")
     return ""

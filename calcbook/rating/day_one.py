@@ -14,6 +14,7 @@ import numpy as np
 from calcbook.chain.build import build
 from calcbook.chain.checks import evaluate_check
 from calcbook.chain.completing import completed
+from calcbook.chain.duty import OWNER as DUTY
 from calcbook.chain.ends import closed_ends, end_checks, end_states
 from calcbook.chain.findings import wall_checks
 from calcbook.chain.outcome import CheckResult, Solved
@@ -188,12 +189,19 @@ def _ranges(chain: Chain, solution: Solution) -> list[CheckResult]:
 
 
 def _checks(chain: Chain, inputs: Mapping[str, Array], solution: Solution, state: str) -> list[CheckResult]:
-    """Phases at the wall, at the means and at both ends, and figures outside their bands, of the clean unit."""
+    """Phases at the wall, at the means and at both ends, what the duty itself limits, and figures outside their
+    bands, of the clean unit."""
     phases = [
         *wall_checks(chain, "", solution),
         *end_checks(closed_ends(end_states(chain, inputs, {CLEAN: solution})), ""),
     ]
     found = [check for check in phases if check.state != "within"]
     found += [check for check in _ranges(chain, solution) if check.state in ("outside", "not evaluable")]
+    found += [
+        evaluate_check(check, solution, "", chain.dimensions)
+        for check in chain.checks
+        if check.owner == DUTY and check.limit.level == "range"
+    ]
+    found = [check for check in found if check.state != "within"]
     found += band_checks(chain, "", solution)
     return [check._replace(condition=state) for check in found]

@@ -8,6 +8,7 @@ import pytest
 from iapws import IAPWS97
 
 from calcbook.chain.outcome import Solved
+from calcbook.faults import Faults
 from calcbook.interface import solve_file
 from calcbook.record import record_text
 
@@ -78,7 +79,7 @@ def test_the_flow_that_a_duty_needs(tmp_path: Path) -> None:
     duty = result.base.results["duty"].value
     needed = result.base.results["flow_needed"].value
     assert needed == pytest.approx(duty / latent_heat(), rel=2e-4)
-    assert result.base.results["phase_change"].value == pytest.approx(needed / 0.6, rel=1e-12)
+    assert result.base.results["phase_change steam service"].value == pytest.approx(needed / 0.6, rel=1e-12)
     assert not result.open_items
 
 
@@ -86,3 +87,44 @@ def test_a_flow_that_does_not_carry_the_duty_is_an_open_item(tmp_path: Path) -> 
     result = solved(tmp_path, "0.3", duty=True)
     (item,) = {item.id.rpartition(" / ")[0] for item in result.open_items}
     assert item == "duty / heat balance / phase change"
+
+
+@pytest.mark.parametrize("duty", [False, True])
+def test_a_saturated_stream_without_flow_is_told_at_its_place(tmp_path: Path, duty: bool) -> None:
+    with pytest.raises(Faults, match="limit-stops") as caught:
+        solved(tmp_path, "0", duty)
+    (fault,) = caught.value.faults
+    assert "m = 0 kg/s" in fault.found
+    assert fault.place.excerpt.strip().startswith("duty:" if duty else "steam: {fluid: water")
+
+
+def test_a_stated_coefficient_does_not_hide_what_the_steam_carries(tmp_path: Path) -> None:
+    path = tmp_path / "trial.yaml"
+    solved(tmp_path, "0.2", duty=False)
+    text = path.read_text(encoding="utf-8")
+    path.write_text(
+        text.replace(
+            "situation: condensing-horizontal-bundle, with: {n_c: n_c}", "coefficient: h_w, on: outside"
+        ).replace("  n_c:  {value: 5, is: tubes in a column, source: test}\n", ""),
+        encoding="utf-8",
+    )
+    result = solve_file(path, path.name)
+    assert result.base.results["phase_change steam service"].value > 1.0
+    assert "steam / heat balance / phase change" in record_text(result).partition("## 14.")[2]
+
+
+def test_day_one_says_when_the_clean_unit_wants_more_steam_than_there_is(tmp_path: Path) -> None:
+    path = tmp_path / "trial.yaml"
+    solved(tmp_path, "0.5", duty=True)
+    text = path.read_text(encoding="utf-8").replace("N:    {value: 60", "N:    {value: 70")
+    deposit = (
+        "  - {name: deposit, kind: fouling, resistance: {value: 0.0003 m^2 K/W, source: test}, on: inside}\n"
+    )
+    text = text.replace("  - {name: wall,", deposit + "  - {name: wall,")
+    path.write_text(text, encoding="utf-8")
+    result = solve_file(path, path.name)
+    assert result.rating is not None and result.rating.day_one is not None
+    # The duty takes 93 % of the steam; the clean unit would condense more than there is.
+    assert not result.open_items
+    found = {check.id: check.state for check in result.rating.day_one.checks}
+    assert found["duty / heat balance / phase change"] == "outside"

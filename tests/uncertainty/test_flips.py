@@ -388,3 +388,41 @@ def test_every_line_flips_where_it_says_and_not_just_inside(path: Path) -> None:
                 (flip.kind, flip.id, flip.condition, flip.input.symbol, flip.printed, str(error)[:300])
             )
     assert wrong == []
+
+
+# --- limits of the search at both ends, and allowances below zero -------------------------------------
+
+
+@pytest.mark.usefixtures("without_other_methods")
+def test_an_allowance_below_zero_has_a_verdict_in_every_case_and_flips(tmp_path: Path) -> None:
+    criterion = "    acceptance: [{that: largest_allowance deposit >= 0 m^2 K/W, source: test}]\n"
+    cases = "    cases: {plugged: {N: {value: 60, source: test}}}\n"
+    solved = solved_of(tmp_path, COOLER + criterion + cases)
+    assert [(item.case, item.met) for item in (*solved.base.criteria, *solved.cases[1].criteria)] == [
+        ("", True),
+        ("plugged", False),
+    ]
+    lacking = solved.cases[1].results["largest_allowance deposit"].value
+    required = solved.cases[1].results["U_required"].value
+    # Every resistance is as it stands: what is too much is the whole without the deposit less 1/U_required.
+    assert lacking == pytest.approx(1 / required - 1 / solved.base.results["U_clean"].value, rel=1e-9)
+    assert solved.governing == "plugged"
+    assert solved.flips is not None
+    flip = one(solved.flips, CRITERION, "N")
+    # No room is left where the clean unit just carries the duty: its area falls as the number of tubes.
+    carries = 120 / (1 + solved.base.results["area_margin_clean"].value)
+    assert (flip.printed_inside, flip.printed) == (math.ceil(carries), math.ceil(carries) - 1)
+    check_flip(solved.chain, flip)
+
+
+@pytest.mark.usefixtures("without_other_methods")
+def test_a_search_ends_where_a_stream_boils_at_an_end(tmp_path: Path) -> None:
+    """Water at 6 bar boils at 158.8 degC (steam tables by IAPWS-IF97): its inlet gets there before its mean."""
+    body = COOLER.replace("coefficient: h_h, on: inside", "situation: inside-tube")
+    body = "".join(line for line in body.splitlines(keepends=True) if "h_h:" not in line)
+    solved = solved_of(tmp_path, body)
+    assert solved.flips is not None
+    searched = next(item for item in solved.flips.searched if item.input.symbol == "T_hi")
+    assert (searched.high_end, searched.high < 158.9) == ("hot at its inlet: liquid is vapour", True)
+    for item in solved.flips.flips:
+        check_flip(solved.chain, item)

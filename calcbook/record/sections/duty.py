@@ -147,7 +147,7 @@ def _allowance_row(page: Page, figure: str, layers: tuple[Layer, ...]) -> tuple[
         ", ".join(surfaces),
         _plain(page, stated, "area resistance", PLAIN_DIGITS),
         _plain(page, largest.value, "area resistance", PLAIN_DIGITS)
-        if largest is not None
+        if largest is not None and largest.value >= 0.0
         else "none: the duty is not carried even without it",
     )
 
