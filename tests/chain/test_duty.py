@@ -10,7 +10,7 @@ import pytest
 
 from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.solve import solve
-from calcbook.interface import solve_file
+from calcbook.interface import record_text, solve_file
 
 BTU = 5.678263  # W/(m² K) of 1 Btu/(h ft² °F)
 FILE = """
@@ -223,14 +223,19 @@ def test_the_largest_allowance_leaves_no_margin(tmp_path: Path) -> None:
     assert figure(again, "area_margin") == pytest.approx(0.0, abs=1e-12)
 
 
-def test_a_unit_that_is_too_small_has_no_largest_allowance(tmp_path: Path) -> None:
+def test_a_unit_that_is_too_small_has_an_allowance_below_zero(tmp_path: Path) -> None:
     answer = solved(tmp_path, length="300 m")
     assert figure(answer, "area_margin") < 0.0
     assert [item.id for item in answer.open_items] == [
         "duty / area / margin / service",
         "duty / area / margin / clean",
     ]
-    assert "largest_allowance deposit" not in answer.base.results
+    # Both films are stated: the whole without a deposit is too much by what the area lacks.
+    lacking = 1.0 / figure(answer, "U_required") - 1.0 / figure(answer, "U_clean")
+    assert figure(answer, "largest_allowance deposit") == pytest.approx(lacking, rel=1e-9)
+    assert lacking < 0.0
+    table = record_text(answer).partition("### Largest allowances")[2].partition("\n### ")[0]
+    assert "none: the duty is not carried even without it" in table
 
 
 def test_day_one_is_the_clean_unit_with_open_outlets(tmp_path: Path) -> None:
