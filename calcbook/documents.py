@@ -14,6 +14,7 @@ import re
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass, field
 from pathlib import Path
+from typing import NamedTuple
 
 import yaml
 
@@ -32,8 +33,7 @@ class _Loader(getattr(yaml, "CSafeLoader", yaml.SafeLoader)):  # type: ignore[mi
         return "tag:yaml.org,2002:str"
 
 
-@dataclass(frozen=True, slots=True)
-class Scalar:
+class Scalar(NamedTuple):
     """One piece of text. ``style`` is plain, quoted or block; an absent value is an empty plain text."""
 
     text: str
@@ -56,16 +56,14 @@ class Scalar:
         return self.place
 
 
-@dataclass(frozen=True, slots=True)
-class Sequence:
+class Sequence(NamedTuple):
     """A list of nodes."""
 
     items: tuple[Node, ...]
     place: Place
 
 
-@dataclass(frozen=True, slots=True)
-class Mapping:
+class Mapping(NamedTuple):
     """Keys with values in the order written; ``in_braces`` when written as ``{ }``."""
 
     entries: tuple[tuple[Scalar, Node], ...]
@@ -90,8 +88,7 @@ class Mapping:
 Node = Scalar | Sequence | Mapping
 
 
-@dataclass(frozen=True, slots=True)
-class Document:
+class Document(NamedTuple):
     """A whole file: the name it is reported under, its text, and the tree."""
 
     name: str

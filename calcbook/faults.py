@@ -12,7 +12,8 @@ from __future__ import annotations
 import difflib
 import unicodedata
 from collections.abc import Iterable, Iterator, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass
+from typing import NamedTuple
 
 from calcbook.fault_codes import CODES
 
@@ -31,15 +32,14 @@ TRAPS = frozenset(
 )
 
 
-@dataclass(frozen=True, slots=True, order=True)
-class Place:
+class Place(NamedTuple):
     """A stretch of one line of a text: 1-based line and column; ``excerpt`` is the whole line."""
 
     file: str
     line: int = 1
     column: int = 1
     end_column: int = 0
-    excerpt: str = field(default="", compare=False)
+    excerpt: str = ""
 
     def part(self, offset: int, length: int) -> Place:
         """The place of ``length`` characters that start ``offset`` characters after this place."""

@@ -20,10 +20,9 @@ import math
 import re
 import unicodedata
 from collections.abc import Callable, Iterable, Mapping
-from dataclasses import dataclass
 from fractions import Fraction
 from pathlib import Path
-from typing import TYPE_CHECKING, Any, Literal
+from typing import TYPE_CHECKING, Any, Literal, NamedTuple
 
 from calcbook.faults import shown
 
@@ -197,8 +196,7 @@ class QuantityFault(Exception):
         )
 
 
-@dataclass(frozen=True, slots=True)
-class QuantityKind:
+class QuantityKind(NamedTuple):
     """One entry of the vocabulary: what a quantity is called, its SI unit, and which values it may have.
 
     ``scale`` is "point" for a temperature (degC and degF are points of a scale), else "".
@@ -217,8 +215,7 @@ class QuantityKind:
     sign: Sign = "any"
 
 
-@dataclass(frozen=True, slots=True)
-class Quantity:
+class Quantity(NamedTuple):
     """A number with its unit: the SI value, and the text as it was typed (blanks collapsed).
 
     ``reading`` tells how the unit was understood: "point", "difference" or, while no kind is known,
@@ -234,8 +231,7 @@ class Quantity:
     reading: str = ""
 
 
-@dataclass(frozen=True, slots=True)
-class Tolerance:
+class Tolerance(NamedTuple):
     """A half-width: in SI units, or as a fraction of the value when ``relative``."""
 
     half_width: float
@@ -246,8 +242,7 @@ class Tolerance:
 # --- single units ---------------------------------------------------------------------------------
 
 
-@dataclass(frozen=True, slots=True)
-class _Atom:
+class _Atom(NamedTuple):
     """One unit by itself: SI value = typed value * factor + offset (offset of a temperature scale)."""
 
     factor: Fraction
@@ -358,8 +353,7 @@ def _nearest_units(name: str) -> tuple[str, ...]:
 # --- the grammar of units -------------------------------------------------------------------------
 
 
-@dataclass(frozen=True, slots=True)
-class _Factor:
+class _Factor(NamedTuple):
     """One unit with its power; ``power`` is as typed, ``below`` when it stands after the solidus."""
 
     name: str
@@ -367,8 +361,7 @@ class _Factor:
     below: bool
 
 
-@dataclass(frozen=True, slots=True)
-class _Unit:
+class _Unit(NamedTuple):
     """A unit text understood: its factors, and what they amount to."""
 
     factors: tuple[_Factor, ...]
@@ -399,8 +392,7 @@ _TOKEN = re.compile(
 )
 
 
-@dataclass(frozen=True, slots=True)
-class _Token:
+class _Token(NamedTuple):
     kind: str
     text: str
     start: int
@@ -648,8 +640,7 @@ _POWER_OF_TEN = re.compile(
 )
 
 
-@dataclass(frozen=True, slots=True)
-class _Reading:
+class _Reading(NamedTuple):
     """A text taken apart: exact number, understood unit, and the columns of each."""
 
     text: str

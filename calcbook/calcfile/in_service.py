@@ -109,5 +109,5 @@ def _money(reader: Reader, node: Node | None, currency: str) -> Value | None:
     if isinstance(node, MappingNode):
         fields = read_mapping(node, described.SOURCED, reader.collector, node.place)
         source, has_source = fields.text("source"), "source" in fields
-    value = reader.scalar_value(replace(scalar, text=re.sub(r" 1$", "", plain)), source, has_source)
+    value = reader.scalar_value(scalar._replace(text=re.sub(r" 1$", "", plain)), source, has_source)
     return replace(value, text=text)

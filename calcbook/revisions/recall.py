@@ -250,10 +250,10 @@ def _recalled(
     replacement: Quantity | tuple[str, str] | None,
 ) -> Recalled:
     try:
-        if isinstance(replacement, tuple):
-            effect = _with_card(side, wanted.card, replacement)
-        elif replacement is not None:
+        if isinstance(replacement, Quantity):
             effect = _with_value(side, rests, replacement, wanted.only)
+        elif replacement is not None:
+            effect = _with_card(side, wanted.card, replacement)
         else:
             effect = None
     except (Faults, NotConverged) as error:
