@@ -145,8 +145,10 @@ def _solved(
     if solved is None or collector:
         return None
     solved = judged_later(solved, collector)
-    if collector or not for_record:
-        return None if collector else solved
+    if collector:
+        return None
+    if not for_record:
+        return solved
     solved = replace(solved, sweep=sweep_of(solved, axes, collector))
     return replace(solved, flips=distances_to_flip(solved)) if not collector else None
 

@@ -75,10 +75,13 @@ def _largest(
         missing = (1.0 / needed[active] - 1.0 / there) / weight[active]
         agreed = np.abs(missing) * weight[active] * needed[active] <= AGREEMENT
         result[active[agreed]] = resistance[agreed]
-        active = active[~agreed]
+        lacking = (resistance == 0.0) & (missing < 0.0)
+        result[active[lacking]] = missing[lacking]
+        going_on = np.isfinite(missing) & ~agreed & ~lacking
+        active = active[going_on]
         if not len(active):
             break
-        resistance = np.maximum(resistance + missing, 0.0)[~agreed]
+        resistance = np.maximum(resistance + missing, 0.0)[going_on]
         part = {name: value[active] if np.ndim(value) else value for name, value in inputs.items()}
         one, given = with_figures(chain, part, {figure: resistance})
         solution = solve(
@@ -87,14 +90,7 @@ def _largest(
             SERVICE,
             keep=(chain.results["U"], UNKNOWNS),
             thorough=thorough,
-            start=None if unknowns is None else unknowns[:, ~agreed],
+            start=None if unknowns is None else unknowns[:, going_on],
         )
-        there = solution.figure(chain.results["U"])
-        lacking = (resistance == 0.0) & (there < needed[active])
-        result[active[lacking]] = ((1.0 / needed[active] - 1.0 / there) / weight[active])[lacking]
-        going_on = np.isfinite(there) & ~lacking
-        active, resistance, there = active[going_on], resistance[going_on], there[going_on]
-        unknowns = None if solution.unknowns is None else solution.unknowns[:, going_on]
-        if not len(active):
-            break
+        there, unknowns = solution.figure(chain.results["U"]), solution.unknowns
     return result.reshape(shape)

@@ -202,8 +202,7 @@ class _Analysis:
                 raise NotConverged(self.chain.calculation.number, name, condition)
             evaluate_pressure_drops(self.chain, solution)
         ends = closed_ends(end_states(self.chain, inputs, solutions))
-        results = self._results(solutions, inputs)
-        results |= _single(surfaces_at_ends(ends))
+        results = self._results(solutions, inputs, ends)
         self.results = self.results or results
         checks = (*self._checks(name, solutions), *end_checks(ends, name))
         for check in checks:
@@ -286,10 +285,14 @@ class _Analysis:
     # -- results ------------------------------------------------------------------------------------
 
     def _results(
-        self, solutions: Mapping[str, Solution], inputs: Mapping[str, np.ndarray]
+        self,
+        solutions: Mapping[str, Solution],
+        inputs: Mapping[str, np.ndarray],
+        ends: tuple[EndState, ...],
     ) -> dict[str, Result]:
-        """The named results of a single record, and the largest allowances, which take solutions of their own."""
-        return _single(self.figures(solutions) | allowance_figures(self.chain, inputs, solutions[SERVICE]))
+        """The named results of a single record, with those that take solutions of their own."""
+        allowances = allowance_figures(self.chain, inputs, solutions[SERVICE])
+        return _single(self.figures(solutions) | allowances | surfaces_at_ends(ends))
 
     def figures(self, solutions: Mapping[str, Solution]) -> dict[str, ResultFigures]:
         """Every named result at every sample."""
@@ -762,18 +765,8 @@ class _Analysis:
         limit = self.limit_of(criterion, base.kind, solutions[SERVICE]) if base is not None else None
         if base is None or limit is None:
             return None
-        return CriterionResult(
-            f"criterion {number}",
-            case,
-            criterion.text,
-            math.nan,
-            float(limit),
-            math.nan,
-            False,
-            base.kind,
-            criterion.source,
-            "there is no value in this case",
-        )
+        words = "there is no value in this case"
+        return _told_in_words(number, criterion, case, base.kind, float(limit), False, words)
 
     def _not_lost(
         self, number: int, criterion: Criterion, solutions: Mapping[str, Solution]
@@ -787,18 +780,8 @@ class _Analysis:
         until = solutions[SERVICE].number(self.chain.in_service["until"])
         if limit is None or not until >= float(limit):
             return None
-        return CriterionResult(
-            f"criterion {number}",
-            "",
-            criterion.text,
-            math.nan,
-            float(limit),
-            math.nan,
-            OPPOSITE[criterion.operator] > 0.0,
-            kind,
-            criterion.source,
-            f"the duty is not lost within {stated.until.text}",
-        )
+        met, words = OPPOSITE[criterion.operator] > 0.0, f"the duty is not lost within {stated.until.text}"
+        return _told_in_words(number, criterion, "", kind, float(limit), met, words)
 
     def _report_unknown(self, criterion: Criterion, results: Mapping[str, Result]) -> None:
         name = shown(criterion.result)
@@ -1138,6 +1121,16 @@ def criterion_met(criterion: Criterion, margin: Array | float) -> Array:
 
 
 # --- small helpers ----------------------------------------------------------------------------------
+
+
+def _told_in_words(
+    number: int, criterion: Criterion, case: str, kind: QuantityKind, limit: float, met: bool, words: str
+) -> CriterionResult:
+    """A criterion whose verdict rests on words in place of a value."""
+    nan = math.nan
+    return CriterionResult(
+        f"criterion {number}", case, criterion.text, nan, limit, nan, met, kind, criterion.source, words
+    )
 
 
 def _least_margin(item: CriterionResult) -> float:

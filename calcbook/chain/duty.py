@@ -117,13 +117,12 @@ class DutyLayout:
 
     def balance(self, streams: Mapping[str, StreamState]) -> bool:
         """Capacities, heat of each side and the duty; False after a fault that leaves no duty."""
-        states = {name: streams.get(side.stream) for name, side in self.duty.sides.items()}
-        if None in states.values():
+        sides = self.duty.sides
+        self.states = {name: streams[side.stream] for name, side in sides.items() if side.stream in streams}
+        if len(self.states) < len(sides):
             return False
-        for name, side in self.duty.sides.items():
-            state = states[name]
-            assert state is not None
-            self.states[name] = state
+        for name, side in sides.items():
+            state = self.states[name]
             if side.inlet is None and not self._is_isothermal(name, side, state):
                 return False
             if side.inlet is not None and state.is_saturated and state.pressure:
@@ -134,8 +133,8 @@ class DutyLayout:
                 )
                 return False
         for name in SIDES:
-            self._capacity(name, states[name])
-            self._mean_check(name, states[name])
+            self._capacity(name)
+            self._mean_check(name)
         heats = [self._heat(name) for name in SIDES if self._has_heat(name)]
         if not heats:
             return self._by_effectiveness()
@@ -169,9 +168,9 @@ class DutyLayout:
         )
         return True
 
-    def _capacity(self, name: str, state: StreamState | None) -> None:
+    def _capacity(self, name: str) -> None:
         """The capacity flow of a side whose mass flow is known."""
-        assert state is not None
+        state = self.states[name]
         if name == self.isothermal or not state.mass_flow:
             return
         heat_capacity = self.scope.step(
@@ -193,17 +192,14 @@ class DutyLayout:
             "mass flow and heat capacity at the mean temperature",
             "conductance",
         )
-        self._check(
-            f"ends / {name} flow",
-            SOME_FLOW,
-            "stop",
-            NO_FLOW,
-            {"m": state.mass_flow},
-        )
+        self._flow_check(name)
 
-    def _mean_check(self, name: str, state: StreamState | None) -> None:
+    def _flow_check(self, name: str) -> None:
+        self._check(f"ends / {name} flow", SOME_FLOW, "stop", NO_FLOW, {"m": self.states[name].mass_flow})
+
+    def _mean_check(self, name: str) -> None:
         """A stated temperature of a stream beside the mean of its ends."""
-        assert state is not None
+        state = self.states[name]
         mean = self.results.get(f"T {name} mean", "")
         if mean and state.temperature != mean:
             ends = {
@@ -442,7 +438,7 @@ class DutyLayout:
         if state.mass_flow:
             changed = changed_part(self.scope, state, heat, OWNER)
             self.results[f"{PHASE_CHANGE} {state.name}"] = changed
-            self._check(f"ends / {self.isothermal} flow", SOME_FLOW, "stop", NO_FLOW, {"m": state.mass_flow})
+            self._flow_check(self.isothermal)
             self._check("heat balance / phase change", WHOLE_FLOW, "range", BECAUSE, {"x_pc": changed})
 
     def _streams_have_films(self, elements: tuple[Element, ...]) -> bool:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -428,12 +428,8 @@ def stream_phases(
     Along one pressure each phase has one stretch of temperatures: two ends of one phase settle what lies between.
     """
     states, place = stream_states(state, values)
-    groups: dict[tuple[float, ...], list[int]] = {}
-    for number, (_, pressure, fraction) in enumerate(states):
-        groups.setdefault((_or_unknown(pressure), _or_unknown(fraction)), []).append(number)
     phases = [""] * len(states)
-    for numbers in groups.values():
-        numbers.sort(key=lambda number: states[number][0])
+    for numbers in along_pressures(states):
         ends = [_phase(state, *states[number]) for number in (numbers[0], numbers[-1])]
         for number in numbers:
             phases[number] = ends[0] if ends[0] == ends[1] else _phase(state, *states[number])
@@ -458,6 +454,14 @@ def _phase(state: StreamState, temperature: float, pressure: float, fraction: fl
     except PropertyFault:
         return ""
     return "" if math.isnan(temperature) else fluid.phase_at(temperature)
+
+
+def along_pressures(states: Sequence[tuple[float, float, float]]) -> list[list[int]]:
+    """The numbers of states in groups of one pressure and fraction, in each from the coldest to the hottest."""
+    groups: dict[tuple[float, float], list[int]] = {}
+    for number, (_, pressure, fraction) in enumerate(states):
+        groups.setdefault((_or_unknown(pressure), _or_unknown(fraction)), []).append(number)
+    return [sorted(numbers, key=lambda number: states[number][0]) for numbers in groups.values()]
 
 
 def known_or_none(figure: float) -> float | None:

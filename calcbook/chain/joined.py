@@ -9,7 +9,7 @@ import numpy as np
 
 from calcbook.chain.fluids import PropertyOperation
 from calcbook.chain.types import ChainStep
-from calcbook.library.operations import Slopes, Together, chained
+from calcbook.library.operations import Slopes, Together, chained, moving_symbols
 
 Array = np.ndarray
 TEMPERATURE = "T"
@@ -26,7 +26,7 @@ class PropertiesTogether(Together):
         """Put every property into ``values``, and its derivatives into ``slopes``."""
         inputs = self.steps[0].inputs
         arguments = {local: values[name] for local, name in inputs.items()}
-        moving = [local for local, name in inputs.items() if slopes is not None and name in slopes]
+        moving = moving_symbols(inputs, slopes)
         asked = [(operation.property_name, False) for operation in self.operations]
         if TEMPERATURE in moving:
             asked += [(operation.property_name, True) for operation in self.operations]

@@ -33,6 +33,7 @@ from calcbook.chain.completing import completed
 from calcbook.chain.ends import EndState, end_states, id_at
 from calcbook.chain.findings import (
     WallLimit,
+    along_pressures,
     ends_of,
     film_steps,
     known_or_none,
@@ -43,9 +44,8 @@ from calcbook.chain.findings import (
 from calcbook.chain.flips_outcome import CONTROLLING, CRITERION, LIMIT, METHOD
 from calcbook.chain.outcome import CaseOutcome
 from calcbook.chain.pressure import drops, evaluate_pressure_drops, law_choice
-from calcbook.chain.solve import Solution, conditions_of, numbers_in, solve_both
+from calcbook.chain.solve import Solution, conditions_of, halves_of, numbers_in, solve_both
 from calcbook.chain.types import (
-    CLEAN,
     CONDITIONS,
     SERVICE,
     Chain,
@@ -203,15 +203,15 @@ def _solve(
     samples: Samples,
     start: Array | None,
 ) -> None:
-    size, count = len(samples.missing), len(samples.solved)
     if start is not None:
-        start = np.concatenate([start[0][:, samples.solved], start[1][:, samples.solved]], axis=1)
+        start = np.concatenate(list(start[:, :, samples.solved]), axis=1)
     both = solve_both(chain, inputs, thorough=False, start=start)
-    if both.unknowns is not None:
-        samples.unknowns = np.full((2, len(both.unknowns), size), np.nan)
-        samples.unknowns[:, :, samples.solved] = both.unknowns.reshape(-1, 2, count).swapaxes(0, 1)
     evaluate_pressure_drops(chain, both)
     solutions = conditions_of(both)
+    if both.unknowns is not None:
+        samples.unknowns = np.full((2, len(both.unknowns), len(samples.missing)), np.nan)
+        for place, condition in enumerate(CONDITIONS):
+            samples.unknowns[place][:, samples.solved] = solutions[condition].unknowns
     ends = end_states(chain, inputs, solutions, thorough=False)
     samples.results = result_figures(chain, solutions) | surfaces_at_ends(ends)
     if any(name.startswith(LARGEST_ALLOWANCE) for name in _results_asked(chain)):
@@ -295,8 +295,7 @@ class _Limits:
         self._cards(found)
         for item in wall_limits(self.chain, self.both):
             _put_wall(found, item.id, item, item.acts)
-        size = len(self.case_of)
-        for condition, half in ((SERVICE, slice(size, 2 * size)), (CLEAN, slice(0, size))):
+        for condition, half in reversed(halves_of(len(self.case_of)).items()):
             limits = {name: limit.part(half) for name, limit in found.items()}
             for state in self.ends:
                 if state.solution.condition == condition:
@@ -472,17 +471,17 @@ def _mark_states(
         if state.temperature not in values:
             continue
         _mark_faults(state, state.name, state.phase, values, samples)
+        wanted = np.full(case_of.shape, state.phase)
         if state.name in phases:
             known, which = stream_phases(state, values)
-            other = np.array([phase for phase, *_ in known])[which] != np.array(phases[state.name])[case_of]
+            wanted = np.array(phases[state.name])[case_of]
+            other = np.array([phase for phase, *_ in known])[which] != wanted
             samples.mark(other, f"{state.name} has another phase")
         # A stream keeps the phase of its mean from end to end.
         for place, temperature in ends_of(chain, state.name):
             at_end = replace(state, temperature=temperature)
-            for phase in dict.fromkeys(phases.get(state.name, (state.phase,))):
-                own = np.array([one == phase for one in phases.get(state.name, (phase,))])
-                acts = own[case_of] if state.name in phases else np.ones(case_of.shape, dtype=bool)
-                _mark_faults(at_end, f"{state.name}{place}", phase, values, samples, acts)
+            for phase in dict.fromkeys(wanted.tolist()):
+                _mark_faults(at_end, f"{state.name}{place}", phase, values, samples, wanted == phase)
     for here, opposite in ((chain.inner, chain.outer), (chain.outer, chain.inner)):
         mark_directions(here, opposite, values, samples)
 
@@ -530,11 +529,7 @@ def _state_faults(state: StreamState, states: Sequence[tuple[float, float, float
     Along one pressure the good temperatures are one stretch: it is looked for from both ends.
     """
     words = [""] * len(states)
-    groups: dict[tuple[str, str], list[int]] = {}
-    for number, (_, pressure, fraction) in enumerate(states):
-        groups.setdefault((repr(pressure), repr(fraction)), []).append(number)
-    for numbers in groups.values():
-        numbers.sort(key=lambda number: states[number][0])
+    for numbers in along_pressures(states):
         for order in (numbers, numbers[::-1]):
             for number in order:
                 words[number] = words[number] or _state_fault(state, *states[number], phase)

@@ -8,7 +8,7 @@ in pieces of fixed size, so that the memory for work on the way stays small.
 
 from __future__ import annotations
 
-from collections.abc import Collection, Mapping
+from collections.abc import Callable, Collection, Mapping
 from dataclasses import dataclass, field, replace
 from typing import Any
 
@@ -72,29 +72,20 @@ class Solution:
 
     def part(self, samples: slice) -> Solution:
         """Some samples of a solution of one row."""
-
-        def cut(figures: Mapping[str, Array]) -> dict[str, Array]:
-            return {
-                name: value[samples] if isinstance(value, np.ndarray) and value.ndim else value
-                for name, value in figures.items()
-            }
-
-        return Solution(
-            self.condition,
-            cut(self.values),
-            cut(self.chosen),
-            self.converged[samples],
-            cut(self.jumps),
-            {name: (low[samples], high[samples]) for name, (low, high) in self.jump_sides.items()},
-            None if self.unknowns is None else self.unknowns[:, samples],
-        )
+        part = self._taken(lambda row: row[samples])
+        part.unknowns = None if self.unknowns is None else self.unknowns[:, samples]
+        return part
 
     def sample(self, number: int) -> Solution:
         """One sample as the solution of a single record."""
+        return self._taken(lambda row: np.asarray(row[number]))
+
+    def _taken(self, take: Callable[[Array], Array]) -> Solution:
+        """The figures that are left of every row of samples; what does not vary stays as it is."""
 
         def own(value: Array) -> Array:
             # Tables of cards stand among the values and are no samples.
-            return np.asarray(value[number]) if isinstance(value, np.ndarray) and value.ndim else value
+            return take(value) if isinstance(value, np.ndarray) and value.ndim else value
 
         return Solution(
             self.condition,
@@ -154,7 +145,7 @@ def closed(
     if size == 0:
         raise ValueError("there are no samples to solve")
     flat = {name: _flat(value, shape) for name, value in inputs.items()}
-    joined = _Joined(condition, shape, size)
+    pieces = _Joined(condition, shape, size)
     with np.errstate(all="ignore"):
         for first in range(0, size, PIECE):
             piece = slice(first, min(first + PIECE, size))
@@ -162,8 +153,8 @@ def closed(
             engine = Engine(chain, part, condition, forced or {}, 1 if shape == () else piece.stop - first)
             engine.choices.update({name: choice[piece] for name, choice in (choices or {}).items()})
             engine.solve(thorough, None if start is None else start[:, piece])
-            joined.take(engine, piece, keep)
-    return joined.solution()
+            pieces.take(engine, piece, keep)
+    return pieces.solution()
 
 
 def solve_both(
@@ -183,9 +174,13 @@ def solve_both(
 
 def conditions_of(both: Solution) -> dict[str, Solution]:
     """The solutions clean and in service, from one of both."""
-    size = both.converged.size // 2
-    halves = {CLEAN: slice(0, size), SERVICE: slice(size, 2 * size)}
+    halves = halves_of(both.converged.size // 2)
     return {condition: replace(both.part(half), condition=condition) for condition, half in halves.items()}
+
+
+def halves_of(size: int) -> dict[str, slice]:
+    """Where the samples of each condition stand in a solution of both, ``size`` of each."""
+    return {CLEAN: slice(0, size), SERVICE: slice(size, 2 * size)}
 
 
 def _flat(value: Array, shape: tuple[int, ...]) -> Array:

@@ -285,9 +285,9 @@ def _compare_step(first: _Step, rest: list[tuple[str, _Step]]) -> _Step:
 
 def _logic_step(op: str, parts: tuple[Node, ...], repeated: dict[Node, int]) -> _Step:
     first = _compile_truth(parts[0], repeated)
-    later = [_Branch((part,), (_compile_truth(part, repeated),)) for part in parts[1:]]
+    later = [_Branch((part,), _side_by_side([_compile_truth(part, repeated)])) for part in parts[1:]]
     settled_by = op == "or"
-    settled = _Branch((), (lambda frame: np.bool_(settled_by),))
+    settled = _Branch((), lambda frame: [np.bool_(settled_by)])
 
     def logic(frame: _Frame) -> Any:
         result: Any = np.asarray(first(frame))
@@ -302,7 +302,9 @@ def _conditional_step(condition: Node, yes: Node, no: Node, repeated: dict[Node,
     test = _compile_truth(condition, repeated)
     is_true = is_truth(yes) or is_truth(no)
     compile_part = _compile_truth if is_true else _compile
-    if_true, if_false = (_Branch((part,), (compile_part(part, repeated),)) for part in (yes, no))
+    if_true, if_false = (
+        _Branch((part,), _side_by_side([compile_part(part, repeated)])) for part in (yes, no)
+    )
     kind = bool if is_true else float
 
     def choose(frame: _Frame) -> Any:
@@ -315,8 +317,7 @@ def _compile_row(nodes: tuple[Node, ...], repeated: dict[Node, int]) -> _Row:
     """Several nodes in one go; where the first is a choice, the others are parted with it."""
     first = nodes[0]
     if not isinstance(first, Conditional):
-        steps = [_compile(node, repeated) for node in nodes]
-        return lambda frame: [step(frame) for step in steps]
+        return _side_by_side([_compile(node, repeated) for node in nodes])
     parted = [
         (node.yes, node.no)
         if isinstance(node, Conditional) and node.condition == first.condition
@@ -324,8 +325,12 @@ def _compile_row(nodes: tuple[Node, ...], repeated: dict[Node, int]) -> _Row:
         for node in nodes
     ]
     test = _compile_truth(first.condition, repeated)
-    yes, no = (_Branch(side, row=_compile_row(side, repeated)) for side in zip(*parted, strict=True))
+    yes, no = (_Branch(side, _compile_row(side, repeated)) for side in zip(*parted, strict=True))
     return lambda frame: _merge(frame, np.asarray(test(frame)), yes, no, float)
+
+
+def _side_by_side(steps: list[_Step]) -> _Row:
+    return lambda frame: [step(frame) for step in steps]
 
 
 class _Branch:
@@ -333,9 +338,9 @@ class _Branch:
 
     __slots__ = ("row", "symbols")
 
-    def __init__(self, nodes: tuple[Node, ...], steps: tuple[_Step, ...] = (), row: _Row | None = None):
+    def __init__(self, nodes: tuple[Node, ...], row: _Row):
         self.symbols = tuple(dict.fromkeys(name for node in nodes for name in node.symbols))
-        self.row: _Row = row or (lambda frame: [step(frame) for step in steps])
+        self.row = row
 
 
 def _merge(frame: _Frame, chosen: NDArray[Any], yes: _Branch, no: _Branch, kind: type) -> list[Any]:

@@ -298,7 +298,7 @@ def run(steps: Sequence[Step | Together], values: dict[str, Array], slopes: Slop
                 step.run(values, slopes)
                 continue
             operation = step.operation
-            moving = _moving(step, slopes)
+            moving = moving_symbols(step.inputs, slopes)
             if not isinstance(operation, RelationOperation):
                 arguments = {local: values[name] for local, name in step.inputs.items()}
                 value = operation.value(arguments)
@@ -315,11 +315,11 @@ def run(steps: Sequence[Step | Together], values: dict[str, Array], slopes: Slop
                     slopes[step.name] = carried
 
 
-def _moving(step: Step, slopes: Slopes | None) -> tuple[str, ...]:
-    """The local symbols of a step that depend on a seed."""
+def moving_symbols(inputs: Mapping[str, str], slopes: Slopes | None) -> tuple[str, ...]:
+    """The local symbols of some inputs that depend on a seed."""
     if slopes is None:
         return ()
-    return tuple(local for local, name in step.inputs.items() if name in slopes)
+    return tuple(local for local, name in inputs.items() if name in slopes)
 
 
 def chained(inputs: Mapping[str, str], local_slopes: Mapping[str, Array], slopes: Slopes) -> dict[str, Array]:

@@ -339,13 +339,7 @@ class PureAtPressure(_BackedAtPressure):
     def _flat(self, property_name: str, temperatures: Array, sloped: bool) -> Array:
         if temperatures.size == 1:
             return self._flat_one(property_name, temperatures, sloped)
-        result = np.full(temperatures.shape, np.nan)
-        for chosen, curve, _ in self._curves(temperatures):
-            if chosen.all():
-                return _along(curve, property_name, temperatures, sloped)
-            if chosen.any():
-                result[chosen] = _along(curve, property_name, temperatures[chosen], sloped)
-        return result
+        return self._flat_rows(((property_name, sloped),), temperatures)[0]
 
     def _flat_rows(self, asked: tuple[Asked, ...], temperatures: Array) -> Array:
         if temperatures.size == 1:
@@ -492,13 +486,7 @@ def _kept_facts(code: Code, place: str, ask: Callable[[], dict[str, Any]]) -> di
 
 def _along(curve: Curve, name: str, temperatures: Array, sloped: bool) -> Array:
     """Values or slopes on a curve, NaN outside its interval."""
-    inside = (temperatures >= curve.low) & (temperatures <= curve.high)
-    ask = curve.slope if sloped else curve.value
-    if inside.all():
-        return ask(name, temperatures)
-    result = np.full(temperatures.shape, np.nan)
-    result[inside] = ask(name, temperatures[inside])
-    return result
+    return _rows_along(curve, ((name, sloped),), temperatures)[0]
 
 
 def _rows_along(curve: Curve, asked: tuple[Asked, ...], temperatures: Array) -> Array:

@@ -108,22 +108,25 @@ class Curve:
         """For each of ``asked`` the panel that holds all temperatures; None where there is none, or one sample."""
         if temperatures.size < 2:
             return None
-        least, most = float(temperatures.min()), float(temperatures.max())
+        ends = _ends(temperatures)
         panels: dict[str, _Panel] = {}
-        for name, _ in asked:
-            if name in panels:
-                continue
-            path, low, high = "", self.low, self.high
-            while (coefficients := self._panel(name, path, low, high)) is None and len(path) < DEPTH:
-                middle = 0.5 * (low + high)
-                if (least < middle) != (most < middle):
-                    return None
-                path, low, high = (path + "0", low, middle) if most < middle else (path + "1", middle, high)
-            if coefficients is None:
+        for name in dict.fromkeys(name for name, _ in asked):
+            panel = self._holding(name, *ends)
+            if panel is None:
                 return None
-            panels[name] = _Panel(path, low, high, coefficients)
+            panels[name] = panel
         self.store.save()
         return [panels[name] for name, _ in asked]
+
+    def _holding(self, name: str, least: float, most: float) -> _Panel | None:
+        """The panel that holds a stretch of temperatures; None where it is cut, or where no series is met."""
+        path, low, high = "", self.low, self.high
+        while (coefficients := self._panel(name, path, low, high)) is None and len(path) < DEPTH:
+            middle = 0.5 * (low + high)
+            if (least < middle) != (most < middle):
+                return None
+            path, low, high = (path + "0", low, middle) if most < middle else (path + "1", middle, high)
+        return _Panel(path, low, high, coefficients) if coefficients is not None else None
 
     def _lay_out(self, asked: tuple[Asked, ...], panels: list[_Panel]) -> _Rows:
         """The series of ``asked``, then those of the values that logarithmic slopes need and were not asked for."""
@@ -150,15 +153,18 @@ class Curve:
         )
 
     def _walk(self, name: str, temperatures: Array, sloped: bool) -> Array:
-        if temperatures.size == 1:
-            return self._walk_one(name, temperatures, sloped)
         if not temperatures.size:
             return np.empty_like(temperatures)
-        whole = self._panel(name, "", self.low, self.high)
-        if whole is not None:
-            result = self._from_series(name, _Panel("", self.low, self.high, whole), temperatures, sloped)
-            self.store.save()
-            return result
+        panel = self._holding(name, *_ends(temperatures))
+        if panel is not None:
+            result = self._from_series(name, panel, temperatures, sloped)
+        else:
+            result = self._parted(name, temperatures, sloped)
+        self.store.save()
+        return result
+
+    def _parted(self, name: str, temperatures: Array, sloped: bool) -> Array:
+        """Samples that lie in different panels, or where no series is met."""
         result = np.empty_like(temperatures)
         waiting = [("", self.low, self.high, np.arange(temperatures.size))]
         while waiting:
@@ -176,21 +182,6 @@ class Curve:
                 below = temperatures[chosen] < middle
                 waiting.append((path + "0", low, middle, chosen[below]))
                 waiting.append((path + "1", middle, high, chosen[~below]))
-        self.store.save()
-        return result
-
-    def _walk_one(self, name: str, temperature: Array, sloped: bool) -> Array:
-        """The same walk for one sample, which has one way through the panels."""
-        at = temperature.item()
-        path, low, high = "", self.low, self.high
-        while (coefficients := self._panel(name, path, low, high)) is None and len(path) < DEPTH:
-            middle = 0.5 * (low + high)
-            path, low, high = (path + "0", low, middle) if at < middle else (path + "1", middle, high)
-        if coefficients is not None:
-            result = self._from_series(name, _Panel(path, low, high, coefficients), temperature, sloped)
-        else:
-            result = self.direct(name, temperature, sloped)
-        self.store.save()
         return result
 
     def _from_series(self, name: str, panel: _Panel, temperatures: Array, sloped: bool) -> Array:
@@ -258,6 +249,13 @@ class Curve:
             if name in family.properties:
                 return family
         raise PropertyFault("property-missing", f"no {name} along this curve")
+
+
+def _ends(temperatures: Array) -> tuple[float, float]:
+    """The coldest and the hottest of some samples."""
+    if temperatures.size == 1:
+        return temperatures.item(), temperatures.item()
+    return float(temperatures.min()), float(temperatures.max())
 
 
 def logged(name: str) -> bool:

@@ -170,13 +170,12 @@ class _Table:
     def _more_unknowns(self, samples: Samples, start: int) -> Array | None:
         """What the circuits were closed with, by condition, of every sample; NaN where they were not."""
         added, known = samples.unknowns, self.unknowns
-        if added is None and known is None:
-            return None
-        shape = (added if added is not None else known).shape[:2]  # type: ignore[union-attr]
-        if added is None:
-            added = np.full((*shape, len(samples.missing)), np.nan)
+        if known is None and added is not None:
+            known = np.full((*added.shape[:2], start), np.nan)
         if known is None:
-            known = np.full((*shape, start), np.nan)
+            return None
+        if added is None:
+            added = np.full((*known.shape[:2], len(samples.missing)), np.nan)
         return np.concatenate([known, added], axis=2)
 
     def _reason(self, reason: str) -> int:

@@ -13,7 +13,9 @@ import resource
 import sys
 import tempfile
 import time
+from collections.abc import Callable
 from pathlib import Path
+from typing import TypeVar
 
 import numpy as np
 
@@ -31,6 +33,7 @@ from calcbook.uncertainty.measured import Measured, measured
 from calcbook.uncertainty.samples import ChainModel
 from calcbook.uncertainty.sampling import MOST_TRIALS, Drawn, propagate
 
+Result = TypeVar("Result")
 REPEATS = 3
 TOLERANCES = {"m_hot": "2 %", "T_hot": "0.5 K", "T_cold": "0.5 K", "h_o": "20 %"}
 
@@ -46,7 +49,7 @@ def body() -> str:
     return "\n".join(lines) + "\n"
 
 
-def seconds(work):  # type: ignore[no-untyped-def]
+def seconds(work: Callable[[], Result]) -> tuple[Result, float]:
     """The result of some work and the processor time it took, which other programs disturb least."""
     start = time.process_time()
     result = work()

@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 
 from calcbook.interface import solve_file
-from calcbook.properties import clear_memory, pure
+from calcbook.properties import pure
 
 HEAD = """\
 calculation: {number: P-1, title: Published, plant: Works, revision: A, prepared by: K. L., date: 2026-11-20}
@@ -17,14 +17,9 @@ BTU, FOOT, RANKINE = 1055.05585262, 0.3048, 5 / 9
 US_COEFFICIENT = BTU / 3600 / FOOT**2 / RANKINE  # Btu/(h ft^2 degF) in W/(m^2 K)
 
 
-@pytest.fixture(scope="module", autouse=True)
-def _own_cache(tmp_path_factory):
-    patch = pytest.MonkeyPatch()
-    patch.setenv("CALCBOOK_CACHE", str(tmp_path_factory.mktemp("cache")))
-    clear_memory()
-    yield
-    patch.undo()
-    clear_memory()
+@pytest.fixture(scope="session", autouse=True)
+def _own_cache(own_cache: None) -> None:
+    """Every calculation of this module works in the cache of the run."""
 
 
 def solved(folder, body: str):
