@@ -240,7 +240,7 @@ def _check_surfaces(chain: Chain, values: Mapping[str, Any], collector: Collecto
             collector.add(
                 "wall-inverted",
                 place,
-                f"the surface {after.name} does not lie outside {before.name}",
+                f"the surface `{after.name}` does not lie outside the surface `{before.name}`",
                 found=f"{number_text(outer, 5)} m against {number_text(inner, 5)} m",
                 expected="an outside diameter above the inside diameter",
             )

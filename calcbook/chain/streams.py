@@ -13,7 +13,7 @@ from calcbook.chain.types import StreamState
 from calcbook.formulas import parse_expression
 from calcbook.library import Library, vocabulary
 from calcbook.properties import PropertyFault
-from calcbook.quantities import QuantityFault, as_kind
+from calcbook.quantities import QuantityFault, as_kind, si_unit
 
 SATURATION = "saturation"
 HUMIDITY_RATIO = "humidity ratio"
@@ -352,10 +352,19 @@ def _flow_kind(scope: Scope, flow: Value | None) -> str:
         "unit-dimension",
         flow.place,
         "this is no flow",
-        found=flow.text,
+        found=_stated(scope, flow),
         expected="a mass flow (kg/s), a volume flow (m^3/h) or a speed (m/s)",
     )
     return ""
+
+
+def _stated(scope: Scope, flow: Value) -> str:
+    """What stands behind a flow: its own text, that of its given, or the unit of its derived figure."""
+    given = scope.calculation.givens.get(flow.symbol)
+    if given is not None:
+        return given.value.text
+    derived = scope.dimensions.get(f"derived/{flow.symbol}")
+    return si_unit(derived) if derived is not None else flow.text
 
 
 def _mass_flow(scope: Scope, stream: Stream, state: StreamState) -> str:
