@@ -485,16 +485,16 @@ def stream_states(
     columns = np.broadcast_arrays(
         *(np.asarray(values[name], dtype=float) if name else np.asarray(math.nan) for name in names)
     )
-    rows = np.nan_to_num(np.stack([column.ravel() for column in columns]), nan=UNKNOWN)
-    found: dict[tuple[float, ...], int] = {}
-    place = [found.setdefault(row, len(found)) for row in zip(*rows.tolist(), strict=True)]
-    states = [
-        (first, second, third)
-        for first, second, third in (
-            tuple(math.nan if figure == UNKNOWN else figure for figure in row) for row in found
-        )
-    ]
-    return states, np.array(place).reshape(columns[0].shape)
+    shape = columns[0].shape
+    temperature, *others = (np.nan_to_num(column.ravel(), nan=UNKNOWN) for column in columns)
+    if all((other == other[0]).all() for other in others):
+        temperatures, place = np.unique(temperature, return_inverse=True)
+        rows = np.stack([temperatures, *(np.full(temperatures.shape, other[0]) for other in others)])
+    else:
+        rows, place = np.unique(np.stack([temperature, *others]), axis=1, return_inverse=True)
+    rows = np.where(rows == UNKNOWN, np.nan, rows)
+    states = [(first, second, third) for first, second, third in rows.T.tolist()]
+    return states, np.asarray(place).reshape(shape)
 
 
 # --- what the runner decided ------------------------------------------------------------------------

@@ -6,7 +6,7 @@ that the circuit closes on can depend on them.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Mapping
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -154,15 +154,25 @@ def evaluate_pressure_drops(chain: Chain, solution: Solution) -> None:
     A pressure drop whose figures the solution does not know (a surface temperature without temperatures)
     stays out.
     """
-    shared = {step.id for step in chain.steps}
+    known = {step.id for step in chain.steps}
     for group in (chain.inner, chain.outer):
         for branch in group.branches:
             if branch.pressure_drop is not None and is_known(chain, group, branch.pressure_drop):
                 with np.errstate(all="ignore"):
-                    found = _evaluated(branch.pressure_drop, solution, shared)
+                    found = _evaluated(
+                        branch.pressure_drop, solution, known | _known_everywhere(branch, solution)
+                    )
                 solution.values.update(
                     {name: value for name, value in found.items() if name not in solution.values}
                 )
+
+
+def _known_everywhere(branch: Branch, solution: Solution) -> frozenset[str]:
+    """Ids of the steps that every method that a film used takes: their figures stand in all samples."""
+    if branch.name not in solution.chosen:
+        return frozenset()
+    used = [branch.candidates[number] for number in numbers_in(solution.chosen[branch.name])]
+    return frozenset.intersection(*(frozenset(step.id for step in candidate.steps) for candidate in used))
 
 
 def is_known(chain: Chain, group: Group, drop: PressureDrop) -> bool:
@@ -233,12 +243,14 @@ def law_choice(drop: PressureDrop, values: Mapping[str, Array]) -> Array:
     return choice
 
 
-def _evaluated(drop: PressureDrop, solution: Solution, shared: set[str]) -> dict[str, Array]:
-    """Every figure of a pressure drop; the film's steps again, for samples where it used another law."""
+def _evaluated(drop: PressureDrop, solution: Solution, known: set[str]) -> dict[str, Array]:
+    """Every figure of a pressure drop; those of the film that are not ``known`` in all samples again."""
     values = dict(solution.values)
+    made = set(known)
 
-    def make(steps: tuple[ChainStep, ...], wanted: Callable[[str], bool] = lambda name: True) -> None:
-        run([step for step in steps if step.id not in shared and wanted(step.id)], values)
+    def make(steps: tuple[ChainStep, ...]) -> None:
+        run([step for step in steps if step.id not in made], values)
+        made.update(step.id for step in steps)
 
     make(drop.choice_steps)
     if drop.laws:

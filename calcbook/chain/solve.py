@@ -8,7 +8,7 @@ in pieces of fixed size, so that the memory for work on the way stays small.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Collection, Mapping
+from collections.abc import Callable, Collection, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from typing import Any
 
@@ -256,13 +256,32 @@ class _Joined:
 class _Plan:
     """What is evaluated anew whenever the temperatures of an element move.
 
-    ``wanted`` is the id of the result, ``following`` are the steps that lead to it from what moves, and
-    ``outside`` the ids that they take from what stays.
+    ``wanted`` is the id of the result, ``steps`` lead to it from what moves (``following`` as they are best run),
+    and ``outside`` are the ids that they take from what stays.
     """
 
     wanted: str
+    steps: tuple[ChainStep, ...]
     following: tuple[ChainStep | Together, ...]
     outside: tuple[str, ...]
+
+
+@dataclass(frozen=True)
+class _Parted:
+    """Ways to a film coefficient that act side by side: the steps that all take, then those of each alone."""
+
+    common: tuple[ChainStep | Together, ...]
+    common_ids: frozenset[str]
+    rests: tuple[tuple[ChainStep | Together, ...], ...]
+    own: tuple[tuple[ChainStep, ...], ...]
+
+    @classmethod
+    def of(cls, ways: Sequence[tuple[ChainStep, ...]]) -> _Parted:
+        """Ways parted; a step of one id is the same in all of them."""
+        ids = frozenset.intersection(*(frozenset(step.id for step in way) for way in ways))
+        own = tuple(tuple(step for step in way if step.id not in ids) for way in ways)
+        common = joined([step for step in ways[0] if step.id in ids])
+        return cls(common, ids, tuple(joined(rest) for rest in own), own)
 
 
 class _Order:
@@ -296,7 +315,7 @@ class _Order:
                     needed.update(step.inputs.values())
             steps = tuple(step for step in self.following if step.id in needed)
             outside = {bound for step in steps for bound in step.inputs.values()} - self.follows
-            plan = self.plans[wanted] = _Plan(wanted, joined(steps), tuple(sorted(outside)))
+            plan = self.plans[wanted] = _Plan(wanted, steps, joined(steps), tuple(sorted(outside)))
         return plan
 
 
@@ -514,23 +533,14 @@ class Engine:
         """
         given = _given(group, surface, flux)
         choice = self.choice(group, branch, samples, given)
-        if (choice == choice[0]).all():
-            coefficient, slopes = self._candidate(group, branch, int(choice[0]), samples, given, wants_slopes)
+        methods = numbers_in(choice)
+        if len(methods) == 1:
+            plan = self._plan_of(group, branch, methods[0])
+            coefficient, slopes = self._evaluated(plan, samples, given, wants_slopes)
         else:
-            coefficient, slopes = np.full(len(samples), np.nan), {}
-            for method in numbers_in(choice):
-                mask = choice == method
-                part, part_slopes = self._candidate(
-                    group,
-                    branch,
-                    method,
-                    samples[mask],
-                    {name: value[mask] for name, value in given.items()},
-                    wants_slopes,
-                )
-                coefficient[mask] = part
-                for name, slope in part_slopes.items():
-                    slopes.setdefault(name, np.zeros(len(samples)))[mask] = slope
+            plans = [self._plan_of(group, branch, method) for method in methods]
+            masks = [choice == method for method in methods]
+            coefficient, slopes = self._side_by_side(plans, masks, samples, given, wants_slopes)
         held = self.held_value.get(branch.name)
         if held is None:
             return coefficient, slopes
@@ -538,18 +548,48 @@ class Engine:
         slopes = {name: np.where(is_held, 0.0, slope) for name, slope in slopes.items()}
         return np.where(is_held, held[samples], coefficient), slopes
 
-    def _candidate(
+    def _plan_of(self, group: Group, branch: Branch, method: int) -> _Plan:
+        candidate = self.forced.get(branch.name) or branch.candidates[method]
+        return self._plan(candidate.coefficient, candidate.steps, _moving(group))
+
+    def _side_by_side(
         self,
-        group: Group,
-        branch: Branch,
-        method: int,
+        plans: list[_Plan],
+        masks: list[Array],
         samples: Array,
         given: Mapping[str, Array],
         wants_slopes: bool,
     ) -> tuple[Array, dict[str, Array]]:
-        candidate = self.forced.get(branch.name) or branch.candidates[method]
-        plan = self._plan(candidate.coefficient, candidate.steps, _moving(group))
-        return self._evaluated(plan, samples, given, wants_slopes)
+        """As ``_evaluated``, each plan for the samples of its mask; what they have in common for all at once."""
+        parted = self._parted([plan.steps for plan in plans])
+        values = {name: self.at(name, samples) for plan in plans for name in plan.outside or (plan.wanted,)}
+        values.update(given)
+        slopes: Slopes | None = {name: {name: ONE} for name in given} if wants_slopes else None
+        run(parted.common, values, slopes)
+        result = np.full(len(samples), np.nan)
+        found: dict[str, Array] = {}
+        for plan, mask, rest in zip(plans, masks, parted.rests, strict=True):
+            part = {name: _chosen(value, mask) for name, value in values.items()}
+            carried: Slopes | None = None
+            if slopes is not None:
+                carried = {
+                    name: {seed: _chosen(slope, mask) for seed, slope in row.items()}
+                    for name, row in slopes.items()
+                }
+            run(rest, part, carried)
+            result[mask] = part[plan.wanted]
+            for name, slope in (carried or {}).get(plan.wanted, {}).items():
+                found.setdefault(name, np.zeros(len(samples)))[mask] = slope
+        return result, found
+
+    def _parted(self, ways: list[tuple[ChainStep, ...]]) -> _Parted:
+        """What ways have in common; the same in every solution of a chain."""
+        # Plans and orders keep the ways, so that no others can stand where they stood.
+        key = ("parted", *map(id, ways))
+        parted: _Parted | None = self.chain.memory.get(key)
+        if parted is None:
+            parted = self.chain.memory[key] = _Parted.of(ways)
+        return parted
 
     def choice(self, group: Group, branch: Branch, samples: Array, given: Mapping[str, Array]) -> Array:
         """The number of the candidate that acts, for each of some samples."""
@@ -776,20 +816,19 @@ class Engine:
         coefficient = np.full(self.size, np.nan)
         shared = {step.id for step in branch.choice_steps}
         gathered: dict[str, Array] = {}
-        for method in numbers_in(choice):
-            candidate = branch.candidates[method]
+        candidates = [branch.candidates[method] for method in numbers_in(choice)]
+        orders = [self._stay(candidate.steps, _moving(group)) for candidate in candidates]
+        parted = self._parted([order.following for order in orders])
+        run(parted.common, self.values)
+        for method, candidate, rest, own in zip(
+            numbers_in(choice), candidates, parted.rests, parted.own, strict=True
+        ):
             samples = np.flatnonzero(choice == method)
-            order = self._stay(candidate.steps, _moving(group))
-            names = {bound for step in candidate.steps for bound in step.inputs.values()} - order.follows
-            names |= set(_moving(group))
-            part = {
-                name: self.at(name, samples)
-                for name in names | {candidate.coefficient}
-                if name in self.values
-            }
-            run(order.together, part)
+            names = {bound for step in own for bound in step.inputs.values()} | {candidate.coefficient}
+            part = {name: self.at(name, samples) for name in names if name in self.values}
+            run(rest, part)
             coefficient[samples] = part[candidate.coefficient]
-            for step in order.following:
+            for step in own:
                 if step.id in shared:
                     continue
                 value = np.asarray(part[step.id])
@@ -861,6 +900,11 @@ def _spread(value: Array, shape: tuple[int, ...]) -> Array:
     if value.shape == shape:
         return value
     return value.reshape(shape) if shape == (1,) else np.broadcast_to(value, shape)
+
+
+def _chosen(value: Any, mask: Array) -> Any:
+    """The samples of a mask; what does not vary stays one figure."""
+    return value[mask] if isinstance(value, np.ndarray) and value.ndim else value
 
 
 def _figure(value: Any) -> Any:

@@ -12,7 +12,15 @@ from numpy.typing import ArrayLike, NDArray
 
 from calcbook.properties import backend, states
 from calcbook.properties.backend import PROPERTIES, SATURATION_PRESSURE, SATURATION_PROPERTIES, Code
-from calcbook.properties.curves import AGREEMENT, PRESSURE_SLOPE, SLOPE_AGREEMENT, Asked, Curve, Family
+from calcbook.properties.curves import (
+    AGREEMENT,
+    PRESSURE_SLOPE,
+    SLOPE_AGREEMENT,
+    Asked,
+    Curve,
+    Family,
+    ends_of,
+)
 from calcbook.properties.faults import PropertyFault
 from calcbook.properties.findings import Finding
 from calcbook.properties.fluid import Fluid, FluidAtPressure, Outside, Phase, _floats, _known, read_phase
@@ -146,10 +154,10 @@ class IncompressibleAtPressure(_BackedAtPressure):
         return Curve(low, high, store(f"{code.text} incompressible"), (family,))
 
     def _flat(self, property_name: str, temperatures: Array, sloped: bool) -> Array:
-        return _along(self._line, property_name, temperatures, sloped)
+        return self._line.rows(((property_name, sloped),), temperatures)[0]
 
     def _flat_rows(self, asked: tuple[Asked, ...], temperatures: Array) -> Array:
-        return _rows_along(self._line, asked, temperatures)
+        return self._line.rows(asked, temperatures)
 
 
 @dataclass(frozen=True)
@@ -180,7 +188,7 @@ class Saturated(_BackedAtPressure):
     def saturation_pressure(self, temperature: ArrayLike, *, outside: Outside = "fault") -> Array:
         """Vapour pressure in Pa."""
         temperatures = _floats(temperature)
-        result = _along(self.curve(), SATURATION_PRESSURE, temperatures.ravel(), sloped=False)
+        result = self.curve().rows(((SATURATION_PRESSURE, False),), temperatures.ravel())[0]
         return self._delivered(SATURATION_PRESSURE, temperatures, result, outside)
 
     def boiling_temperature(self, pressure: ArrayLike, *, outside: Outside = "fault") -> Array:
@@ -243,10 +251,10 @@ class Saturated(_BackedAtPressure):
         return (*super().check_state(temperature, stated_phase), note)
 
     def _flat(self, property_name: str, temperatures: Array, sloped: bool) -> Array:
-        return _along(self.curve(), property_name, temperatures, sloped)
+        return self.curve().rows(((property_name, sloped),), temperatures)[0]
 
     def _flat_rows(self, asked: tuple[Asked, ...], temperatures: Array) -> Array:
-        return _rows_along(self.curve(), asked, temperatures)
+        return self.curve().rows(asked, temperatures)
 
 
 @dataclass(frozen=True)
@@ -333,7 +341,7 @@ class PureAtPressure(_BackedAtPressure):
         for chosen, curve, at_saturation in self._curves(temperatures.ravel()):
             part = temperatures.ravel()[chosen]
             name = property_name + PRESSURE_SLOPE
-            result[chosen] = np.zeros_like(part) if at_saturation else _along(curve, name, part, sloped=False)
+            result[chosen] = np.zeros_like(part) if at_saturation else curve.rows(((name, False),), part)[0]
         return self._delivered(property_name, temperatures, result, outside)
 
     def _flat(self, property_name: str, temperatures: Array, sloped: bool) -> Array:
@@ -344,12 +352,15 @@ class PureAtPressure(_BackedAtPressure):
     def _flat_rows(self, asked: tuple[Asked, ...], temperatures: Array) -> Array:
         if temperatures.size == 1:
             return super()._flat_rows(asked, temperatures)
+        if not temperatures.size:
+            return np.empty((len(asked), 0))
+        least, most = ends = ends_of(temperatures)
+        curve = self._curve_at(least)
+        if curve is not None and curve is self._curve_at(most) and least <= most:
+            return curve.rows(asked, temperatures, ends)
         result = np.full((len(asked), temperatures.size), np.nan)
         for chosen, curve, _ in self._curves(temperatures):
-            if chosen.all():
-                return _rows_along(curve, asked, temperatures)
-            if chosen.any():
-                result[:, chosen] = _rows_along(curve, asked, temperatures[chosen])
+            result[:, chosen] = curve.rows(asked, temperatures[chosen])
         return result
 
     def _flat_one(self, property_name: str, temperature: Array, sloped: bool) -> Array:
@@ -482,18 +493,3 @@ def _kept_facts(code: Code, place: str, ask: Callable[[], dict[str, Any]]) -> di
         kept.changed()
         kept.save()
     return kept.facts
-
-
-def _along(curve: Curve, name: str, temperatures: Array, sloped: bool) -> Array:
-    """Values or slopes on a curve, NaN outside its interval."""
-    return _rows_along(curve, ((name, sloped),), temperatures)[0]
-
-
-def _rows_along(curve: Curve, asked: tuple[Asked, ...], temperatures: Array) -> Array:
-    """Values and slopes on a curve, a row each; NaN outside its interval."""
-    inside = (temperatures >= curve.low) & (temperatures <= curve.high)
-    if inside.all():
-        return curve.rows(asked, temperatures)
-    result = np.full((len(asked), temperatures.size), np.nan)
-    result[:, inside] = curve.rows(asked, temperatures[inside])
-    return result

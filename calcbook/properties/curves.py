@@ -39,6 +39,8 @@ class Family:
 
 # A property of a curve, and whether its slope along the curve is asked for.
 Asked = tuple[str, bool]
+# Rows of an array; those that follow each other as a slice, which takes them without a copy.
+_Places = list[int] | slice
 
 
 class _Panel(NamedTuple):
@@ -53,16 +55,19 @@ class _Panel(NamedTuple):
 class _Rows(NamedTuple):
     """Series of several properties, and slopes, laid out to be summed together: a row of figures each.
 
-    ``logged`` are the rows of logarithms; ``sloped`` are the rows of their slopes, ``of`` the rows of what they
-    are slopes of.
+    ``low`` and ``high`` are the ends of the stretch that every one of their panels holds, ``middle`` and ``half``
+    what reduces a temperature to each interval. ``logged`` are the rows of logarithms; ``sloped`` are the rows of
+    their slopes, ``of`` the rows of what they are slopes of.
     """
 
+    low: float
+    high: float
     coefficients: Array
-    low: Array
-    high: Array
-    logged: list[int]
-    sloped: list[int]
-    of: list[int]
+    middle: Array
+    half: Array
+    logged: _Places
+    sloped: _Places
+    of: _Places
 
 
 @dataclass(frozen=True, eq=False)
@@ -77,6 +82,7 @@ class Curve:
     _laid_out: dict[tuple[tuple[Asked, ...], tuple[str, ...]], _Rows] = field(
         init=False, repr=False, default_factory=dict
     )
+    _last: dict[tuple[Asked, ...], _Rows] = field(init=False, repr=False, default_factory=dict)
 
     def value(self, name: str, temperatures: Array) -> Array:
         """The property at temperatures (1-d, all within the interval); NaN where the backend fails."""
@@ -86,32 +92,51 @@ class Curve:
         """Its derivative along the curve, from the same series."""
         return self._walk(name, temperatures, sloped=True)
 
-    def rows(self, asked: tuple[Asked, ...], temperatures: Array) -> Array:
-        """Values and slopes at the same temperatures (1-d, within the interval), a row for each of ``asked``.
+    def rows(
+        self, asked: tuple[Asked, ...], temperatures: Array, ends: tuple[float, float] | None = None
+    ) -> Array:
+        """Values and slopes at the same temperatures (1-d), a row for each of ``asked``; NaN outside the interval.
 
         The bits are those of ``value`` and ``slope``. Where one panel of each property holds all the
-        temperatures, their series are summed together.
+        temperatures, their series are summed together. ``ends`` are the coldest and the hottest of them, if known.
         """
-        panels = self._common_panels(asked, temperatures)
-        if panels is None:
-            return np.stack([self._walk(name, temperatures, sloped) for name, sloped in asked])
-        place = (asked, tuple(panel.path for panel in panels))
-        rows = self._laid_out.get(place)
+        if not temperatures.size:
+            return np.empty((len(asked), 0))
+        least, most = ends or ends_of(temperatures)
+        if not self.low <= least <= most <= self.high:
+            inside = (temperatures >= self.low) & (temperatures <= self.high)
+            result = np.full((len(asked), temperatures.size), np.nan)
+            result[:, inside] = self.rows(asked, temperatures[inside])
+            return result
+        rows = self._rows_of(asked, least, most) if temperatures.size > 1 else None
         if rows is None:
-            rows = self._laid_out[place] = self._lay_out(asked, panels)
-        result = series.evaluate_rows(rows.coefficients, rows.low, rows.high, temperatures)
+            return np.stack([self._walk(name, temperatures, sloped) for name, sloped in asked])
+        result = series.evaluate_rows(rows.coefficients, rows.middle, rows.half, temperatures)
         result[rows.logged] = np.exp(result[rows.logged])
         result[rows.sloped] = result[rows.of] * result[rows.sloped]
         return result[: len(asked)]
 
-    def _common_panels(self, asked: tuple[Asked, ...], temperatures: Array) -> list[_Panel] | None:
-        """For each of ``asked`` the panel that holds all temperatures; None where there is none, or one sample."""
-        if temperatures.size < 2:
+    def _rows_of(self, asked: tuple[Asked, ...], least: float, most: float) -> _Rows | None:
+        """The series of ``asked`` for a stretch of temperatures; None where one panel of each does not hold it."""
+        last = self._last.get(asked)
+        # A temperature between two panels belongs to the hotter one.
+        if last is not None and last.low <= least and most < last.high:
+            return last
+        panels = self._common_panels(asked, least, most)
+        if panels is None:
             return None
-        ends = _ends(temperatures)
+        place = (asked, tuple(panel.path for panel in panels))
+        rows = self._laid_out.get(place)
+        if rows is None:
+            rows = self._laid_out[place] = self._lay_out(asked, panels)
+        self._last[asked] = rows
+        return rows
+
+    def _common_panels(self, asked: tuple[Asked, ...], least: float, most: float) -> list[_Panel] | None:
+        """For each of ``asked`` the panel that holds a stretch of temperatures; None where there is none."""
         panels: dict[str, _Panel] = {}
         for name in dict.fromkeys(name for name, _ in asked):
-            panel = self._holding(name, *ends)
+            panel = self._holding(name, least, most)
             if panel is None:
                 return None
             panels[name] = panel
@@ -143,19 +168,27 @@ class Curve:
         for place, found in enumerate(listed):
             coefficients[: len(found), place, 0] = found
         slopes = [(name, sloped) for name, sloped in needed if sloped and logged(name)]
-        return _Rows(
-            coefficients,
+        low, high = (
             np.array([[panel.low] for panel in needed.values()]),
             np.array([[panel.high] for panel in needed.values()]),
-            [place for (name, sloped), place in places.items() if logged(name) and not sloped],
-            [places[key] for key in slopes],
-            [places[name, False] for name, _ in slopes],
+        )
+        if (low == low[0]).all() and (high == high[0]).all():
+            low, high = low[:1], high[:1]
+        return _Rows(
+            float(low.max()),
+            float(high.min()),
+            coefficients,
+            0.5 * (low + high),
+            0.5 * (high - low),
+            _placed([place for (name, sloped), place in places.items() if logged(name) and not sloped]),
+            _placed([places[key] for key in slopes]),
+            _placed([places[name, False] for name, _ in slopes]),
         )
 
     def _walk(self, name: str, temperatures: Array, sloped: bool) -> Array:
         if not temperatures.size:
             return np.empty_like(temperatures)
-        panel = self._holding(name, *_ends(temperatures))
+        panel = self._holding(name, *ends_of(temperatures))
         if panel is not None:
             result = self._from_series(name, panel, temperatures, sloped)
         else:
@@ -251,11 +284,18 @@ class Curve:
         raise PropertyFault("property-missing", f"no {name} along this curve")
 
 
-def _ends(temperatures: Array) -> tuple[float, float]:
+def ends_of(temperatures: Array) -> tuple[float, float]:
     """The coldest and the hottest of some samples."""
     if temperatures.size == 1:
         return temperatures.item(), temperatures.item()
     return float(temperatures.min()), float(temperatures.max())
+
+
+def _placed(rows: list[int]) -> _Places:
+    """Rows as they are best taken."""
+    if rows and rows == list(range(rows[0], rows[-1] + 1)):
+        return slice(rows[0], rows[-1] + 1)
+    return rows
 
 
 def logged(name: str) -> bool:

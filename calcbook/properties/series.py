@@ -68,15 +68,16 @@ def evaluate(coefficients: Sequence[float], low: float, high: float, at: Array) 
     return x * later - last + coefficients[0]
 
 
-def evaluate_rows(coefficients: Array, low: Array, high: Array, at: Array) -> Array:
+def evaluate_rows(coefficients: Array, middle: Array, half: Array, at: Array) -> Array:
     """The sums of several series at the same points (1-d), a row each, to the same bits as one by one.
 
-    ``coefficients`` have a series in each column (terms, series, 1); a shorter one ends in zeros. ``low`` and
-    ``high`` are the ends of each interval (series, 1).
+    ``coefficients`` have a series in each column (terms, series, 1); a shorter one ends in zeros. ``middle`` and
+    ``half`` are the middle and half the width of each interval, (series, 1), or (1, 1) of the one that all share.
     """
-    x = (at - 0.5 * (low + high)) / (0.5 * (high - low))
+    x = (at - middle) / half
     double = x + x
-    later, last, free = np.zeros_like(x), np.zeros_like(x), np.empty_like(x)
+    rows = (coefficients.shape[1], at.size)
+    later, last, free = np.zeros(rows), np.zeros(rows), np.empty(rows)
     for coefficient in coefficients[:0:-1]:
         np.multiply(double, later, out=free)
         np.subtract(free, last, out=free)
