@@ -20,6 +20,7 @@ import math
 import re
 import unicodedata
 from collections.abc import Callable, Iterable, Mapping
+from decimal import Decimal
 from fractions import Fraction
 from pathlib import Path
 from typing import TYPE_CHECKING, Any, Literal, NamedTuple
@@ -1068,6 +1069,16 @@ def in_unit(value_si: float, unit_text: str, point: bool = False) -> float:
     atom = _atom(unit.sole_name) if point else None
     offset = atom.offset if atom else Fraction(0)
     return float((Fraction(value_si) - offset) / unit.factor)
+
+
+def si_value(number: Decimal, unit_text: str) -> float:
+    """The SI value of a number in a unit, to the bits of what a text of both is read as.
+
+    degC and degF are points of their scales; a gauge unit only names the unit. Raises ``QuantityFault``.
+    """
+    unit = _understood(unit_text)[0]
+    atom = _atom(unit.sole_name) if unit.sole_name in POINT_SCALES else None
+    return float(Fraction(number) * unit.factor + (atom.offset if atom else 0))
 
 
 def display_unit(kind: QuantityKind, units: Literal["SI", "US customary"]) -> str:

@@ -6,6 +6,7 @@ Conversions come from NIST Special Publication 811 (2008), Appendix B, unless a 
 import math
 import subprocess
 import sys
+from decimal import Decimal
 from fractions import Fraction
 from pathlib import Path
 
@@ -31,6 +32,7 @@ from calcbook.quantities import (
     read_quantity,
     read_tolerance,
     si_unit,
+    si_value,
     unit_display,
     unit_factor,
     unit_names,
@@ -597,6 +599,15 @@ def test_in_unit_and_back(kind: str, value: float) -> None:
         factor = unit_factor(display)[0]
         # one rounding going, one in the factor, one in this product
         assert in_unit(value, display) * factor == pytest.approx(value, rel=4 * ROUNDING)
+
+
+@pytest.mark.parametrize(
+    "text",
+    ["15.4 mm", "-40 degF", "75.00 degC", "1E-7 m", "0.000350 m^2 K/W", "3 bar", "2.5 barg", "0", "7 %"],
+)
+def test_the_value_of_a_number_is_that_of_its_text(text: str) -> None:
+    number, _, unit = text.partition(" ")
+    assert si_value(Decimal(number), unit) == read_any(text).value
 
 
 def test_in_unit_of_a_point_and_of_a_difference() -> None:

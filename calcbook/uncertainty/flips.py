@@ -31,7 +31,7 @@ from calcbook.chain.samples import (
     phases_of,
 )
 from calcbook.chain.types import Chain, Input
-from calcbook.quantities import in_unit, read_any, read_tolerance
+from calcbook.quantities import in_unit, read_tolerance, si_value
 from calcbook.uncertainty.lines import COUNTED, Reach, changes_fluid_state, reach
 
 Array = np.ndarray
@@ -135,7 +135,7 @@ class _Table:
 
     batches: list[Samples] = field(default_factory=list)
     keys: list[Key] = field(default_factory=list)
-    codes: Array = field(default_factory=lambda: np.empty((0, 0), dtype=int))
+    codes: Array = field(default_factory=lambda: np.empty((0, 0), dtype=np.int16))
     missing: Array = field(default_factory=lambda: np.empty(0, dtype=int))
     reasons: list[str] = field(default_factory=lambda: [""])
     margins: dict[int, Array] = field(default_factory=dict)
@@ -153,7 +153,7 @@ class _Table:
             self.stop_rows = np.array(
                 [self.verdict(row, samples).level == "stop" for row in range(len(self.keys))]
             )
-        codes = np.full((len(self.keys), start + size), NO_VERDICT)
+        codes = np.full((len(self.keys), start + size), NO_VERDICT, dtype=np.int16)
         codes[: len(self.codes), :start] = self.codes
         for row, key in enumerate(self.keys):
             if key in samples.verdicts:
@@ -626,6 +626,7 @@ class _Printing:
     outside: float
     given: Given
     digits: int = 0
+    worked_out: dict[int, tuple[Decimal, Decimal]] = field(default_factory=dict)
 
     @property
     def unit(self) -> str:
@@ -642,6 +643,11 @@ class _Printing:
 
     def decimals(self) -> tuple[Decimal, Decimal]:
         """The printed figure, rounded away from the present one, and the one of its last digit before it."""
+        if self.digits not in self.worked_out:
+            self.worked_out[self.digits] = self._decimals()
+        return self.worked_out[self.digits]
+
+    def _decimals(self) -> tuple[Decimal, Decimal]:
         direction = self.line.direction
         if self.line.whole:
             outside = Decimal(int(self.outside))
@@ -649,7 +655,7 @@ class _Printing:
         exact = self._in_unit(self.outside)
         # 348.15 K is 75 °C, not the 74.99999999999997 °C of the subtraction, where both are one figure in SI.
         short = Context(prec=TYPED_DIGITS).create_decimal(exact)
-        if read_any(f"{short} {self.unit}".strip()).value == self.outside:
+        if si_value(short, self.unit) == self.outside:
             exact = short
         change = abs(exact - self.now)
         last = min(exact.adjusted() - PRINTED_DIGITS, change.adjusted() - CHANGE_DIGITS) + 1
@@ -660,5 +666,5 @@ class _Printing:
 
     def figures(self) -> tuple[float, float]:
         """The printed figure and the one just inside it in SI, read as the file would be."""
-        outside, inside = (read_any(f"{figure} {self.unit}".strip()).value for figure in self.decimals())
+        outside, inside = (si_value(figure, self.unit) for figure in self.decimals())
         return outside, inside
