@@ -378,17 +378,20 @@ class _Search:
             return
         # A limit that stops leaves no answer: its own flip is the first sample without one.
         codes = self.table.codes[:, line.places[: end + 1]]
+        rows = np.flatnonzero((codes != codes[:, :1]).any(axis=1))
+        if not len(rows):
+            return
+        codes = codes[rows]
         base = codes[:, :1]
-        other = (codes >= 0) & (base >= 0) & (codes != base)
-        rows, stops = self.table.limit_rows, self.table.stop_rows
-        other[rows] &= codes[rows] != IDLE
-        other[rows] &= (base[rows] != IDLE) | (codes[rows] == BROKEN)
+        other = (codes != base) & (codes >= 0) & (base >= 0)
+        counts = (codes != IDLE) & ((base != IDLE) | (codes == BROKEN))
+        other &= counts | ~self.table.limit_rows[rows, None]
         if codes.shape[1] > end:
-            other[:, end] &= stops & (codes[:, end] == BROKEN)
-        for row in np.flatnonzero(other.any(axis=1)):
-            after = int(np.argmax(other[row]))
-            inside, outside = line.figures[after - 1 : after + 1].tolist()
-            yield _Bracket(line, int(row), after - 1, inside, outside, int(codes[row, after]))
+            other[:, end] &= self.table.stop_rows[rows] & (codes[:, end] == BROKEN)
+        for place, after in enumerate(other.argmax(axis=1).tolist()):
+            if other[place, after]:
+                inside, outside = line.figures[after - 1 : after + 1].tolist()
+                yield _Bracket(line, int(rows[place]), after - 1, inside, outside, int(codes[place, after]))
 
     # -- new figures --------------------------------------------------------------------------------
 
@@ -626,7 +629,7 @@ class _Printing:
     outside: float
     given: Given
     digits: int = 0
-    worked_out: dict[int, tuple[Decimal, Decimal]] = field(default_factory=dict)
+    worked_out: dict[int, tuple[tuple[Decimal, Decimal], tuple[float, float]]] = field(default_factory=dict)
 
     @property
     def unit(self) -> str:
@@ -643,8 +646,17 @@ class _Printing:
 
     def decimals(self) -> tuple[Decimal, Decimal]:
         """The printed figure, rounded away from the present one, and the one of its last digit before it."""
+        return self._found()[0]
+
+    def figures(self) -> tuple[float, float]:
+        """The printed figure and the one just inside it in SI, as the file would be read."""
+        return self._found()[1]
+
+    def _found(self) -> tuple[tuple[Decimal, Decimal], tuple[float, float]]:
         if self.digits not in self.worked_out:
-            self.worked_out[self.digits] = self._decimals()
+            outside, inside = self._decimals()
+            figures = si_value(outside, self.unit), si_value(inside, self.unit)
+            self.worked_out[self.digits] = (outside, inside), figures
         return self.worked_out[self.digits]
 
     def _decimals(self) -> tuple[Decimal, Decimal]:
@@ -663,8 +675,3 @@ class _Printing:
         unit = Decimal(1).scaleb(last - self.digits)
         outside = exact.quantize(unit, rounding=ROUND_CEILING if direction > 0 else ROUND_FLOOR)
         return outside, outside - direction * unit
-
-    def figures(self) -> tuple[float, float]:
-        """The printed figure and the one just inside it in SI, read as the file would be."""
-        outside, inside = (si_value(figure, self.unit) for figure in self.decimals())
-        return outside, inside
