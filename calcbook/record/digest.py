@@ -35,17 +35,18 @@ class Digest:
 def digest_of(solved: Solved) -> Digest:
     """The digest of a solved calculation."""
     calculation = solved.chain.calculation
-    parts: dict[str, object] = {
-        "meaning": {"calculation": calculation.meaning, "settings": calculation.settings.plain},
-        "cards": dict(solved.cards),
-        "results": displayed(solved),
-    }
-    return Digest(_hash(parts), *(_hash(parts[name]) for name in ("meaning", "cards", "results")))
+    meaning = _text({"calculation": calculation.meaning, "settings": calculation.settings.plain})
+    cards, results = _text(dict(solved.cards)), _text(displayed(solved))
+    whole = f'{{"cards":{cards},"meaning":{meaning},"results":{results}}}'
+    return Digest(*map(_hash, (whole, meaning, cards, results)))
 
 
-def _hash(content: object) -> str:
+def _text(content: object) -> str:
     _refuse_numbers(content)
-    text = json.dumps(content, ensure_ascii=False, sort_keys=True, separators=(",", ":"))
+    return json.dumps(content, ensure_ascii=False, sort_keys=True, separators=(",", ":"))
+
+
+def _hash(text: str) -> str:
     return hashlib.sha256(MARK + text.encode("utf-8", "surrogatepass")).hexdigest()
 
 
