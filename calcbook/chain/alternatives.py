@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import replace
 
 import numpy as np
@@ -11,15 +11,15 @@ from calcbook.chain.solve import Solution, solve
 from calcbook.chain.types import SERVICE, Branch, Candidate, Chain, Group, follows_temperature
 
 
-def alternatives(chain: Chain, branch: Branch, others: Sequence[Candidate]) -> list[Solution]:
-    """The solution of the base case with each candidate in place of a film's own.
+def alternatives(chain: Chain, branch: Branch, others: Sequence[Candidate], base: Solution) -> list[Solution]:
+    """The solution of the base case with each candidate in place of a film's own; ``base`` is that with its own.
 
     Those that follow the temperature of the surface are closed together, a sample each, so that all they
     share is evaluated once. A sample's answer does not depend on its neighbours.
     """
     follow = [needs_temperatures(chain, branch, other) for other in others]
     together = [other for other, follows in zip(others, follow, strict=True) if follows]
-    solved = iter(_together(chain, branch, together)) if together else iter(())
+    solved = iter(_together(chain, branch, together, base)) if together else iter(())
     inputs = chain.case_inputs("")
     return [
         next(solved) if follows else solve(chain, inputs, SERVICE, {branch.name: other})
@@ -36,8 +36,11 @@ def _group_of(chain: Chain, branch: Branch) -> Group:
     return next(group for group in (chain.inner, chain.outer) if branch in group.branches)
 
 
-def _together(chain: Chain, branch: Branch, others: Sequence[Candidate]) -> list[Solution]:
-    """One call for all: a film whose candidates are the others, each chosen for a sample of its own."""
+def _together(chain: Chain, branch: Branch, others: Sequence[Candidate], base: Solution) -> list[Solution]:
+    """One call for all: a film whose candidates are the others, each chosen for a sample of its own.
+
+    Where the base case closed with as many moving elements, the circuits are begun from there.
+    """
     group = _group_of(chain, branch)
     film = replace(branch, candidates=tuple(others), choice=())
     changed = replace(group, branches=tuple(film if one is branch else one for one in group.branches))
@@ -45,7 +48,18 @@ def _together(chain: Chain, branch: Branch, others: Sequence[Candidate]) -> list
     inputs = chain.case_inputs("")
     first = next(iter(inputs))
     inputs[first] = np.full(len(others), float(inputs[first]))
+    changed_chain = replace(chain, elements=elements)
+    near = base.unknowns if moving_elements(changed_chain) == moving_elements(chain) else None
     solution = solve(
-        replace(chain, elements=elements), inputs, SERVICE, choices={branch.name: np.arange(len(others))}
+        changed_chain,
+        inputs,
+        SERVICE,
+        choices={branch.name: np.arange(len(others))},
+        start=None if near is None else np.repeat(near, len(others), axis=1),
     )
     return [solution.sample(number) for number in range(len(others))]
+
+
+def moving_elements(chain: Chain, forced: Mapping[str, Candidate] | None = None) -> list[str]:
+    """The elements whose resistance follows their temperatures, with candidates ``forced`` in place of a film's own."""
+    return [element.name for element in chain.elements if follows_temperature(element, forced)]

@@ -908,7 +908,7 @@ class _Analysis:
         """A row for each method in place of the one that is used: what it gives, or why it is left out."""
         left_out = [self._left_out(branch, other, base.solutions[SERVICE]) for other in others]
         tried = [other for other, reason in zip(others, left_out, strict=True) if not reason]
-        solutions = iter(alternatives(self.chain, branch, tried))
+        solutions = iter(alternatives(self.chain, branch, tried, base.solutions[SERVICE]))
         return [
             self._cross_row(branch, used, other, reason, None if reason else next(solutions), base)
             for other, reason in zip(others, left_out, strict=True)

@@ -219,6 +219,11 @@ def mark_of(one: Limited) -> str:
     return f"{one.condition}: {one.id}"
 
 
+def _spread(unknowns: Array | None, size: int) -> Array | None:
+    """The unknowns of one circuit for every sample."""
+    return None if unknowns is None else np.broadcast_to(unknowns, (len(unknowns), size))
+
+
 def _bulks(group: Group) -> set[str]:
     return {group.bulk, *(branch.reference for branch in group.branches)}
 
@@ -240,6 +245,8 @@ class ChainModel:
         self.chain = about_state(chain, first.values)
         self.phases = phases(chain, first)
         self.inputs = inputs
+        # Samples lie about the stated figures: their circuits are begun from where those closed.
+        self.starts = {condition: solution.unknowns for condition, solution in base.items()}
         self.results = tuple(results)
         self.statements = tuple(statements)
         wanted = (*results, *(statement.result for statement in statements))
@@ -280,7 +287,14 @@ class ChainModel:
             }
         whole = completed(self.chain, inputs)
         solutions = {
-            condition: closed(self.chain, whole, condition, keep=self.keep) for condition in self.conditions
+            condition: closed(
+                self.chain,
+                whole,
+                condition,
+                keep=self.keep,
+                start=_spread(self.starts.get(condition), size),
+            )
+            for condition in self.conditions
         }
         for solution in solutions.values():
             possible &= solution.converged
