@@ -3,15 +3,17 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from typing import ClassVar
 
 import numpy as np
 
 from calcbook.chain.about_state import about_state
 from calcbook.chain.checks import NOT_EVALUABLE, OUTSIDE, check_states
 from calcbook.chain.completing import completed
+from calcbook.chain.ends import PLACES, end_states
 from calcbook.chain.samples import Samples, mark_directions, mark_walls
-from calcbook.chain.solve import Solution, closed
+from calcbook.chain.solve import UNKNOWNS, Solution, closed
 from calcbook.chain.types import Branch, Chain, ChainCheck, Group, Layer, StreamState
 from calcbook.properties import FluidAtPressure
 from calcbook.uncertainty.figures import has_floor
@@ -43,6 +45,8 @@ class Statement:
 @dataclass(frozen=True, slots=True)
 class Watched:
     """A limit to be watched in one condition, for the samples whose film uses the method that has it."""
+
+    place: ClassVar[str] = ""
 
     check: ChainCheck
     condition: str
@@ -78,6 +82,7 @@ class WallPhase:
     """A fluid that must not boil, condense or freeze at the surfaces it touches, in one condition.
 
     It does so at ``end``, or at the boiling temperature on ``line`` where the samples have their own pressure.
+    ``place`` is the end of the unit, empty for the mean temperatures.
     """
 
     owner: str
@@ -88,10 +93,11 @@ class WallPhase:
     line: FluidAtPressure | None = None
     pressure: str = ""
     level: str = "range"
+    place: str = ""
 
     @property
     def id(self) -> str:
-        return f"{self.owner} / wall phase / {self.name}"
+        return f"{self.owner} / wall phase / {self.name} {self.place}".rstrip()
 
     @property
     def needs(self) -> set[str]:
@@ -224,6 +230,18 @@ def _spread(unknowns: Array | None, size: int) -> Array | None:
     return None if unknowns is None else np.broadcast_to(unknowns, (len(unknowns), size))
 
 
+def _has_ends(chain: Chain) -> bool:
+    """Whether a unit has ends with temperatures of their own."""
+    return chain.calculation.duty is not None and chain.has_temperatures
+
+
+def _end_temperatures(chain: Chain) -> set[str]:
+    """The ids of the temperatures at both ends of a duty's sides."""
+    duty = chain.calculation.duty
+    names = [f"T {side} {end}" for side in (duty.sides if duty else ()) for end in ("inlet", "outlet")]
+    return {chain.results[name] for name in names if name in chain.results}
+
+
 def _bulks(group: Group) -> set[str]:
     return {group.bulk, *(branch.reference for branch in group.branches)}
 
@@ -256,7 +274,8 @@ class ChainModel:
         self.limits: tuple[Limited, ...] = ()
         for condition in self.conditions if limits else ():
             walls = wall_phases(chain, base[condition], condition)
-            self.limits = (*self.limits, *watched(chain, condition), *walls)
+            at_ends = [replace(wall, place=place) for wall in walls for place in PLACES if _has_ends(chain)]
+            self.limits = (*self.limits, *watched(chain, condition), *walls, *at_ends)
         self.keep = {
             *(step for one in wanted for _, step in one.parts.values()),
             *(statement.limit_step for statement in statements if statement.limit_step),
@@ -265,6 +284,9 @@ class ChainModel:
             *(surface.diameter for surface in chain.surfaces),
             *(name for group in (chain.inner, chain.outer) for name in _bulks(group)),
         }
+        self.looks_at_ends = any(one.place for one in self.limits)
+        if self.looks_at_ends:
+            self.keep |= {UNKNOWNS, *_end_temperatures(chain)}
 
     def outputs(self, drawn: Mapping[str, Array]) -> dict[str, Array]:
         """The results alone, NaN where a sample has no answer."""
@@ -306,13 +328,25 @@ class ChainModel:
         for here, opposite in ((self.chain.inner, self.chain.outer), (self.chain.outer, self.chain.inner)):
             mark_directions(here, opposite, first, states)
         possible &= states.missing == 0
-        return self._sampled(solutions, possible, size)
+        ends = end_states(self.chain, whole, solutions, thorough=False) if self.looks_at_ends else ()
+        places = {(state.solution.condition, state.place): state.solution for state in ends}
+        return self._sampled(solutions, places, possible, size)
 
-    def _sampled(self, solutions: Mapping[str, Solution], possible: Array, size: int) -> Sampled:
+    def _sampled(
+        self,
+        solutions: Mapping[str, Solution],
+        ends: Mapping[tuple[str, str], Solution],
+        possible: Array,
+        size: int,
+    ) -> Sampled:
         marks: dict[str, Array] = {}
         any_outside = np.zeros(size, dtype=bool)
         for one in self.limits:
-            outside = np.broadcast_to(one.outside(solutions[one.condition]), (size,))
+            solution = ends[one.condition, one.place] if one.place else solutions[one.condition]
+            outside = np.broadcast_to(one.outside(solution), (size,))
+            if one.place:
+                # Where the circuit does not close at an end nothing is known of it, as in a record.
+                outside = outside & solution.converged
             if one.level == "stop":
                 possible = possible & ~outside
             else:

@@ -514,6 +514,56 @@ def test_samples_that_boil_at_the_wall_are_counted(tmp_path) -> None:
     )
 
 
+# A counterflow cooler whose resistances are as they stand, whatever the temperatures.
+TWO_ENDS = """\
+givens:
+  H: {value: 5 m, is: height, source: test}
+  W: {value: 8 m, is: width, source: test}
+  t: {value: 2 mm, is: thickness, source: test}
+  m_h: {value: 10 kg/s, is: hot flow, source: test}
+  T_hi: {value: 80 degC, is: hot inlet, source: test}
+  T_ho: {value: 60 degC, is: hot outlet, source: test}
+  T_ci: {value: 25 degC, is: cold inlet, source: test}
+  T_co: {value: 45 degC, is: cold outlet, source: test}
+  m_c: {value: 15 kg/s, is: cold flow, source: test}
+  h_h: {value: 3000 W/(m^2 K), is: hot coefficient, source: test}
+streams:
+  hot: {fluid: water, pressure: {value: 6 bara, source: test}, flow: m_h, phase: liquid}
+  cold: {fluid: water, pressure: {value: 0.2 bara, source: test}, flow: m_c, phase: liquid}
+duty:
+  arrangement: counterflow
+  hot: {stream: hot, inlet: T_hi, outlet: T_ho}
+  cold: {stream: cold, inlet: T_ci, outlet: T_co}
+geometry: {shape: plane, height: H, width: W}
+resistances:
+  - {name: hot film, kind: film, stream: hot, coefficient: h_h, on: inside}
+  - {name: wall, kind: wall, conductivity: {value: 50 W/(m K), source: test}, thickness: t}
+  - {name: cold film, kind: film, stream: cold, situation: trial-film}
+report: {U on: outside}
+"""
+
+
+def test_samples_that_boil_at_one_end_are_counted_there(tmp_path) -> None:
+    """T_s = T_co + U·(T_hi - T_co)/h at the hot inlet; at 0.2 bar water boils at 60.06 degC (IAPWS-IF97)."""
+    situation = house_situation("trial-film", "- {use: trial-law, because: the only one}", "trial-law")
+    law = TRIAL_LAW.replace("500 W", "4000 W").replace("h: 500.0", "h: 4000.0")
+    body = with_tolerance(TWO_ENDS, T_hi="10 K")
+    found = solved(tmp_path, body, SAMPLED.format("U_clean"), {"trial-film": situation, "trial-law": law})
+    samples = found.uncertainty.sampling
+    u = found.base.results["U_clean"].value
+    assert u == pytest.approx(1.0 / (1.0 / 3000.0 + 0.002 / 50.0 + 1.0 / 4000.0))
+    boils = 45.0 + 15.06 * 4000.0 / u
+    expected = (90.0 - boils) / 20.0
+    assert 0.2 < expected < 0.8
+    boiling = {row.check: row for row in samples.outside if "boils" in row.check}
+    assert list(boiling) == ["cold film / wall phase / boils at the hot inlet"]
+    (row,) = boiling.values()
+    # Without a deposit both conditions are one.
+    assert (row.condition, row.nominal) == ("clean and service", "within")
+    deviation = math.sqrt(expected * (1.0 - expected) / samples.trials)
+    assert row.samples / samples.trials == pytest.approx(expected, abs=3.0 * deviation + 1e-3)
+
+
 def test_a_wall_turned_inside_out_has_no_answer(tmp_path) -> None:
     """d_o even within ± 4 mm, d_i 3.3 mm below it: a share (4 - 3.3)/8 of the samples has no wall."""
     body = with_tolerance(FLOW.replace("MASS", "18.2"), d_o="4 mm")
