@@ -22,12 +22,12 @@ from calcbook.chain.films import SATURATED_SIDES
 from calcbook.chain.findings import (
     assumptions_of,
     celsius,
+    ending_properties,
     jump_items,
     root_items,
     stream_findings,
     wall_checks,
 )
-from calcbook.chain.fluids import PropertyOperation
 from calcbook.chain.gaps import PLACE, gaps, unused_steps, with_method
 from calcbook.chain.latent import PHASE_CHANGE
 from calcbook.chain.outcome import (
@@ -244,27 +244,18 @@ class _Analysis:
 
     def _explain(self, name: str, solution: Solution) -> None:
         """A property that ends before the other side's temperature is why a surface could not be found."""
-        if not self.chain.has_temperatures:
-            return
-        for group, other in ((self.chain.inner, self.chain.outer), (self.chain.outer, self.chain.inner)):
-            for branch in group.branches:
-                for step in chosen(branch, solution).steps:
-                    operation = step.operation
-                    if not isinstance(operation, PropertyOperation) or not operation.keeps_phase:
-                        continue
-                    at = dict(solution.values) | {step.inputs["T"]: np.asarray(solution.number(other.bulk))}
-                    value = operation.value({local: at[bound] for local, bound in step.inputs.items()})
-                    if not np.isfinite(value).all():
-                        where = f"case {name}: " if name else ""
-                        bulk = celsius(solution.number(other.bulk))
-                        self.collector.add(
-                            "outside-fluid-range",
-                            self.chain.streams[branch.stream].place,
-                            f"{where}the surface of {branch.name} may come as near to the other side as"
-                            f" {bulk}, where {branch.stream} has no {operation.property_name}",
-                            expected="a fluid or table that reaches the other side's temperature",
-                        )
-                        return
+        for branch, other, property_name, missing in ending_properties(self.chain, solution):
+            if missing.any():
+                where = f"case {name}: " if name else ""
+                bulk = celsius(solution.number(other.bulk))
+                self.collector.add(
+                    "outside-fluid-range",
+                    self.chain.streams[branch.stream].place,
+                    f"{where}the surface of {branch.name} may come as near to the other side as {bulk}, where"
+                    f" {branch.stream} has no {property_name}",
+                    expected="a fluid or table that reaches the other side's temperature",
+                )
+                return
 
     def _report_stop(self, check: CheckResult) -> None:
         calculation = self.chain.calculation

@@ -10,6 +10,7 @@ from typing import Any
 import numpy as np
 
 from calcbook.chain.checks import NOT_EVALUABLE, OUTSIDE, STATES, WITHIN, apart
+from calcbook.chain.fluids import PropertyOperation
 from calcbook.chain.gaps import gaps
 from calcbook.chain.outcome import CheckResult
 from calcbook.chain.roots import other_heat_flows
@@ -495,6 +496,27 @@ def stream_states(
     rows = np.where(rows == UNKNOWN, np.nan, rows)
     states = [(first, second, third) for first, second, third in rows.T.tolist()]
     return states, np.asarray(place).reshape(shape)
+
+
+def ending_properties(chain: Chain, solution: Solution) -> Iterator[tuple[Branch, Group, str, Array]]:
+    """What films read at their surfaces and fluids do not have as far as the bulk of the other side.
+
+    A film, the other side, the property, and whether it is missing there at each sample: why a surface that lies
+    between both may not be found.
+    """
+    if not chain.has_temperatures:
+        return
+    for group, other in ((chain.inner, chain.outer), (chain.outer, chain.inner)):
+        for branch in group.branches:
+            steps = {step.id: step for candidate in branch.candidates for step in candidate.steps}
+            for step in steps.values():
+                operation = step.operation
+                if not isinstance(operation, PropertyOperation) or not operation.keeps_phase:
+                    continue
+                at = {**solution.values, step.inputs["T"]: solution.values[other.bulk]}
+                if all(bound in at for bound in step.inputs.values()):
+                    value = operation.value({local: at[bound] for local, bound in step.inputs.items()})
+                    yield branch, other, operation.property_name, ~np.isfinite(value)
 
 
 # --- what the runner decided ------------------------------------------------------------------------

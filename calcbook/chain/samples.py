@@ -34,6 +34,7 @@ from calcbook.chain.ends import EndState, end_states, id_at
 from calcbook.chain.findings import (
     WallLimit,
     along_pressures,
+    ending_properties,
     ends_of,
     film_steps,
     known_or_none,
@@ -229,6 +230,11 @@ def _solve(
             samples.mark(verdict.codes == BROKEN, reason, samples.solved)
     for solution in solutions.values():
         open_circuit = ~solution.converged | ~np.isfinite(solution.figure(chain.results["U"]))
+        if not open_circuit.any():
+            continue
+        for branch, _, name, missing in ending_properties(chain, solution):
+            why = f"{OPEN_CIRCUIT}: {branch.stream} has no {name} at the other side's temperature"
+            samples.mark(open_circuit & missing, why, samples.solved)
         samples.mark(open_circuit, OPEN_CIRCUIT, samples.solved)
 
 

@@ -252,6 +252,19 @@ COOLER = """
 
 
 @pytest.mark.usefixtures("without_other_methods")
+def test_a_circuit_that_does_not_close_says_which_property_ends(tmp_path: Path) -> None:
+    """Water freezes at 0 degC (common practice): a surface below has no viscosity, and the search ends there."""
+    solved = solved_of(tmp_path, TUBES)
+    assert solved.flips is not None
+    row = next(item for item in solved.flips.searched if item.input.symbol == "T_o")
+    assert row.low_end == "the circuit does not close: water has no viscosity at the other side's temperature"
+    # Heat flows on until the surface freezes: the other side is colder than ice by then.
+    assert row.unit == "degC" and row.low < 0.0
+    # On the other side the flow turns round at the water's own temperature.
+    assert row.high_end == "the heat flow turns round" and row.high < 60.0
+
+
+@pytest.mark.usefixtures("without_other_methods")
 def test_a_largest_allowance_flips_where_the_closed_form_says(tmp_path: Path) -> None:
     criterion = "    acceptance: [{that: largest_allowance deposit >= 0.0005 m^2 K/W, source: test}]\n"
     solved = solved_of(tmp_path, COOLER + criterion)
