@@ -350,7 +350,7 @@ class _Search:
         self.best = {}
         found = []
         for group, brackets in groups.items():
-            nearest = min(brackets, key=lambda bracket: bracket.most)
+            nearest = _nearest(brackets)
             self.best[group] = nearest
             found += [
                 bracket
@@ -574,6 +574,15 @@ class _Search:
         if end == len(line.places):
             return figure, line.reach.end
         return figure, self.table.reasons[self.table.missing[line.places[end]]]
+
+
+def _nearest(brackets: list[_Bracket]) -> _Bracket:
+    """The nearest of some intervals; of those that are as near as can be told the first, the earlier case."""
+    nearest = min(brackets, key=lambda bracket: bracket.most)
+    if not nearest.is_known:
+        return nearest
+    alike = nearest.most + _resolution(nearest.outside, nearest.line.now)
+    return next(bracket for bracket in brackets if bracket.most <= alike and bracket.is_known)
 
 
 def _resolution(figure: float, now: float) -> float:

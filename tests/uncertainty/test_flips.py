@@ -18,6 +18,8 @@ from calcbook.chain.types import Chain
 from calcbook.faults import Collector
 from calcbook.interface import solve_file
 from calcbook.quantities import read_any
+from calcbook.uncertainty import flips
+from calcbook.uncertainty.flips import distances_to_flip
 
 CALCS = Path(__file__).resolve().parent.parent.parent / "calcs"
 EXAMPLES = sorted(
@@ -385,6 +387,28 @@ def without_other_methods(monkeypatch: pytest.MonkeyPatch) -> None:
     """The cross-check and the sensitivities decide no verdict, and take most of the time."""
     monkeypatch.setattr(analysis._Analysis, "_cross", lambda *_: ())
     monkeypatch.setattr(analysis._Analysis, "_sensitivity", lambda *_: ())
+
+
+@pytest.mark.parametrize("name", ["ha-992", "hr-821", "jv-971"])
+@pytest.mark.usefixtures("without_other_methods")
+def test_what_is_found_does_not_hang_on_how_intervals_are_divided(
+    name: str, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """In these two cases share their nearest flip: the earlier one is reported, whatever the last bits say."""
+    solved = solve_file(CALCS / f"{name}.yaml")
+    assert solved.flips is not None
+    found = [shown_of(solved.flips)]
+    for parts in ((1e-3,), (3e-4, 0.02)):
+        monkeypatch.setattr(flips, "FIRST_PARTS", parts)
+        found.append(shown_of(distances_to_flip(solved)))
+    assert found[0] == found[1] == found[2]
+
+
+def shown_of(found: Flips) -> list[tuple[object, ...]]:
+    return [
+        (flip.kind, flip.id, flip.condition, flip.case, flip.becomes, flip.input.id, flip.printed, flip.unit)
+        for flip in found.flips
+    ]
 
 
 @pytest.mark.parametrize("path", EXAMPLES, ids=lambda path: path.stem)
