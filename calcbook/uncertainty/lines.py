@@ -28,8 +28,9 @@ COUNTED = frozenset(
         "channels in parallel",
     )
 )
-# Parts of a whole: never above one.
-SHARES = frozenset(
+# What quantities cannot pass by their definition, with its words: parts of a whole and ratios of the smaller to the
+# larger, a corrugation across the flow, a plate without corrugation.
+HIGHEST = dict.fromkeys(
     (
         "mass fraction",
         "volume fraction",
@@ -38,8 +39,15 @@ SHARES = frozenset(
         "surroundings emissivity",
         "effectiveness",
         "vapour quality",
-    )
-)
+        "relative humidity",
+        "diameter ratio",
+        "side ratio",
+        "curvature ratio",
+        "baffle cut",
+    ),
+    (1.0, "one"),
+) | {"chevron angle": (0.5 * math.pi, "a right angle")}
+LOWEST = {"enlargement": (1.0, "one")}
 # Without a flow there is no film: the search stays above zero.
 FLOWS = frozenset(("mass flow", "volume flow", "speed"))
 # Figures on one side of the present one, and how near and how far: a figure by its logarithm, a temperature in K.
@@ -79,7 +87,8 @@ def reach(item: Input, now: float, direction: int, changes_state: bool) -> Reach
             "the end of the search",
         )
     near = STATE_NEAREST if changes_state else NEAREST
-    if item.kind.sign == "any" or item.kind.reading == "gauge" or now < 0.0:
+    is_positive = item.kind.sign != "any" or item.kind.name in (*HIGHEST, *LOWEST)
+    if not is_positive or item.kind.reading == "gauge" or now < 0.0:
         offsets = abs(now) * np.geomspace(near, factor, count)
         return Reach(
             tuple(now + direction * float(offset) for offset in offsets),
@@ -87,12 +96,15 @@ def reach(item: Input, now: float, direction: int, changes_state: bool) -> Reach
         )
     logarithms = np.geomspace(near, math.log(factor), count)
     figures = [now * math.exp(direction * float(logarithm)) for logarithm in logarithms]
+    bounds = HIGHEST if direction > 0 else LOWEST
+    if item.kind.name in bounds:
+        bound, words = bounds[item.kind.name]
+        inside = [figure for figure in (now, *figures) if direction * figure < direction * bound]
+        return Reach((*inside[1:], bound) if inside else (), words)
     if direction < 0:
         if item.kind.sign == "not negative" and item.kind.name not in FLOWS:
             return Reach((*figures, 0.0), "zero")
         return Reach(tuple(figures), f"{_words(factor)[0]} of it")
-    if item.kind.name in SHARES:
-        return Reach((*(figure for figure in figures if figure < 1.0), 1.0) if now < 1.0 else (), "one")
     return Reach(tuple(figures), f"{_words(factor)[1]} times it")
 
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import replace
+from itertools import pairwise
 from pathlib import Path
 
 import pytest
@@ -14,12 +15,14 @@ from calcbook.chain.flips_outcome import CONTROLLING, CRITERION, LIMIT, METHOD, 
 from calcbook.chain.outcome import CaseOutcome
 from calcbook.chain.pressure import drops, law_of
 from calcbook.chain.solve import chosen
-from calcbook.chain.types import Chain
-from calcbook.faults import Collector
+from calcbook.chain.types import Chain, Input
+from calcbook.faults import Collector, Place
 from calcbook.interface import solve_file
+from calcbook.library import vocabulary
 from calcbook.quantities import read_any
 from calcbook.uncertainty import flips
 from calcbook.uncertainty.flips import distances_to_flip
+from calcbook.uncertainty.lines import reach
 
 CALCS = Path(__file__).resolve().parent.parent.parent / "calcs"
 EXAMPLES = sorted(
@@ -216,6 +219,29 @@ def test_a_chosen_method_flips_at_its_reynolds_number(tmp_path: Path) -> None:
         "gnielinski-1976",
         "gnielinski-transition-2013",
     )
+
+
+@pytest.mark.parametrize(
+    ("kind", "now", "direction", "last", "words"),
+    [
+        ("baffle cut", 0.25, 1, 1.0, "one"),
+        ("emissivity", 0.8, 1, 1.0, "one"),
+        ("chevron angle", math.radians(60.0), 1, math.radians(90.0), "a right angle"),
+        ("enlargement", 1.17, -1, 1.0, "one"),
+        ("enlargement", 1.17, 1, 117.0, "a hundred times it"),
+        ("baffle cut", 0.25, -1, 0.0025, "a hundredth of it"),
+    ],
+)
+def test_the_search_ends_where_a_quantity_does_by_its_definition(
+    kind: str, now: float, direction: int, last: float, words: str
+) -> None:
+    item = Input("given/x", "x", kind, vocabulary()[kind], now, "", "test", Place("x.yaml"), True)
+    found = reach(item, now, direction, False)
+    assert found.figures[-1] == pytest.approx(last) and found.end == words
+    steps = [direction * (after - before) for before, after in pairwise((now, *found.figures))]
+    assert min(steps) > 0.0
+    beyond = reach(item, last * (1.0 + 0.01 * direction), direction, False)
+    assert beyond.figures == () or words.startswith("a hundred")
 
 
 # --- both ends of a duty, and the largest allowance ---------------------------------------------------
