@@ -48,6 +48,7 @@ CODES: dict[str, str] = {
     "number-out-of-proportion": "a figure far beyond anything that a plant has",
     "number-not-finite": "not a number, infinite, or beyond the range of numbers",
     "quantity-negative": "a quantity that cannot be negative or zero",
+    "quantity-beyond-definition": "a quantity beyond what its definition allows, such as a share above one",
     "temperature-not-absolute": "a temperature at or below absolute zero",
     "quantity-percent-of-temperature": "a per cent of a temperature depends on its scale: state a difference in K",
     "unit-missing": "a number without its unit",

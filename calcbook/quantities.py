@@ -201,7 +201,8 @@ class QuantityKind(NamedTuple):
     """One entry of the vocabulary: what a quantity is called, its SI unit, and which values it may have.
 
     ``scale`` is "point" for a temperature (degC and degF are points of a scale), else "".
-    ``reading`` is "absolute" or "gauge" for a pressure, else "".
+    ``reading`` is "absolute" or "gauge" for a pressure, else "". ``least`` and ``most`` are what it cannot pass by
+    its definition, as the vocabulary writes them, or "".
     """
 
     name: str
@@ -214,6 +215,13 @@ class QuantityKind(NamedTuple):
     reading: str = ""
     flag: bool = False
     sign: Sign = "any"
+    least: str = ""
+    most: str = ""
+
+    @property
+    def bounds(self) -> tuple[float, float]:
+        """The least and the greatest value in SI that its definition allows; infinite where there is none."""
+        return _bound(self.least, -math.inf), _bound(self.most, math.inf)
 
 
 class Quantity(NamedTuple):
@@ -817,6 +825,7 @@ def read_quantity(text: str, kind: QuantityKind) -> Quantity:
         return _point(reading)
     value = _rounded(reading.number * reading.unit.factor, reading)
     _check_sign(reading, kind)
+    _check_bounds(reading, kind, value)
     if kind.dimension == _TEMPERATURE:
         return _quantity(reading, value, "difference")
     if kind.reading == "absolute":
@@ -973,6 +982,19 @@ def _check_sign(reading: _Reading, kind: QuantityKind) -> None:
         raise reading.fault("quantity-negative", message, "number", expected=f"a number {must}")
 
 
+def _check_bounds(reading: _Reading, kind: QuantityKind, value: float) -> None:
+    least, most = kind.bounds
+    if not least <= value <= most:
+        must = f"{kind.least} or more" if value < least else f"{kind.most} or less"
+        message = f"{kind.name} is by its definition {must}"
+        raise reading.fault("quantity-beyond-definition", message, "number", expected=must)
+
+
+@functools.lru_cache(maxsize=32)
+def _bound(text: str, absent: float) -> float:
+    return read_any(text).value if text else absent
+
+
 # --- the vocabulary -------------------------------------------------------------------------------
 
 _POSITIVE_UNITS = (
@@ -996,11 +1018,13 @@ _SIGN_OF_NAME: dict[str, Sign] = {
     "Prandtl number": "positive",
     "gauge pressure": "any",
 }
-_ENTRY_KEYS = frozenset({"symbol", "unit", "digits", "meaning", "scale", "reading", "flag", "sign"})
+_ENTRY_KEYS = frozenset(
+    {"symbol", "unit", "digits", "meaning", "scale", "reading", "flag", "sign", "least", "most"}
+)
 
 
 def kind_from_entry(name: str, entry: Mapping[str, str]) -> QuantityKind:
-    """A vocabulary entry (symbol, unit, digits, meaning; scale, reading, flag, sign optional) as a kind.
+    """A vocabulary entry (symbol, unit, digits, meaning; scale, reading, flag, sign, least, most optional) as a kind.
 
     The sign follows from the name or the unit where the entry does not state it. Raises ``ValueError`` for an
     entry that the vocabulary may not hold, and ``QuantityFault`` for its unit.
@@ -1020,6 +1044,8 @@ def kind_from_entry(name: str, entry: Mapping[str, str]) -> QuantityKind:
         reading=_one_of(name, entry, "reading", ("", "absolute", "gauge")),
         flag=_one_of(name, entry, "flag", ("", "false", "true")) == "true",
         sign=_sign(name, entry, dimension),
+        least=entry.get("least", ""),
+        most=entry.get("most", ""),
     )
 
 

@@ -602,6 +602,28 @@ def test_in_unit_and_back(kind: str, value: float) -> None:
 
 
 @pytest.mark.parametrize(
+    ("text", "kind", "expected"),
+    [
+        ("101 %", "baffle cut", "1 or less"),
+        ("1.02", "emissivity", "1 or less"),
+        ("90.1 deg", "chevron angle", "90 deg or less"),
+        ("0.99", "enlargement", "1 or more"),
+    ],
+)
+def test_a_quantity_beyond_its_definition(text: str, kind: str, expected: str) -> None:
+    fault = fault_of(text, kind)
+    assert (fault.code, fault.expected) == ("quantity-beyond-definition", expected)
+
+
+@pytest.mark.parametrize(
+    ("text", "kind"),
+    [("100 %", "baffle cut"), ("90 deg", "chevron angle"), ("1", "enlargement"), ("0", "emissivity")],
+)
+def test_a_quantity_at_the_end_of_its_definition(text: str, kind: str) -> None:
+    assert read_quantity(text, KINDS[kind]).text == text
+
+
+@pytest.mark.parametrize(
     "text",
     ["15.4 mm", "-40 degF", "75.00 degC", "1E-7 m", "0.000350 m^2 K/W", "3 bar", "2.5 barg", "0", "7 %"],
 )

@@ -28,26 +28,6 @@ COUNTED = frozenset(
         "channels in parallel",
     )
 )
-# What quantities cannot pass by their definition, with its words: parts of a whole and ratios of the smaller to the
-# larger, a corrugation across the flow, a plate without corrugation.
-HIGHEST = dict.fromkeys(
-    (
-        "mass fraction",
-        "volume fraction",
-        "mole fraction",
-        "emissivity",
-        "surroundings emissivity",
-        "effectiveness",
-        "vapour quality",
-        "relative humidity",
-        "diameter ratio",
-        "side ratio",
-        "curvature ratio",
-        "baffle cut",
-    ),
-    (1.0, "one"),
-) | {"chevron angle": (0.5 * math.pi, "a right angle")}
-LOWEST = {"enlargement": (1.0, "one")}
 # Without a flow there is no film: the search stays above zero.
 FLOWS = frozenset(("mass flow", "volume flow", "speed"))
 # Figures on one side of the present one, and how near and how far: a figure by its logarithm, a temperature in K.
@@ -87,8 +67,7 @@ def reach(item: Input, now: float, direction: int, changes_state: bool) -> Reach
             "the end of the search",
         )
     near = STATE_NEAREST if changes_state else NEAREST
-    is_positive = item.kind.sign != "any" or item.kind.name in (*HIGHEST, *LOWEST)
-    if not is_positive or item.kind.reading == "gauge" or now < 0.0:
+    if item.kind.sign == "any" or item.kind.reading == "gauge" or now < 0.0:
         offsets = abs(now) * np.geomspace(near, factor, count)
         return Reach(
             tuple(now + direction * float(offset) for offset in offsets),
@@ -96,11 +75,11 @@ def reach(item: Input, now: float, direction: int, changes_state: bool) -> Reach
         )
     logarithms = np.geomspace(near, math.log(factor), count)
     figures = [now * math.exp(direction * float(logarithm)) for logarithm in logarithms]
-    bounds = HIGHEST if direction > 0 else LOWEST
-    if item.kind.name in bounds:
-        bound, words = bounds[item.kind.name]
+    bound = item.kind.bounds[direction > 0]
+    if math.isfinite(bound):
         inside = [figure for figure in (now, *figures) if direction * figure < direction * bound]
-        return Reach((*inside[1:], bound) if inside else (), words)
+        words = item.kind.most if direction > 0 else item.kind.least
+        return Reach((*inside[1:], bound) if inside else (), "one" if words == "1" else "its definition")
     if direction < 0:
         if item.kind.sign == "not negative" and item.kind.name not in FLOWS:
             return Reach((*figures, 0.0), "zero")

@@ -226,7 +226,7 @@ def test_a_chosen_method_flips_at_its_reynolds_number(tmp_path: Path) -> None:
     [
         ("baffle cut", 0.25, 1, 1.0, "one"),
         ("emissivity", 0.8, 1, 1.0, "one"),
-        ("chevron angle", math.radians(60.0), 1, math.radians(90.0), "a right angle"),
+        ("chevron angle", math.radians(60.0), 1, math.radians(90.0), "its definition"),
         ("enlargement", 1.17, -1, 1.0, "one"),
         ("enlargement", 1.17, 1, 117.0, "a hundred times it"),
         ("baffle cut", 0.25, -1, 0.0025, "a hundredth of it"),
