@@ -28,8 +28,10 @@ from calcbook.chain.types import (
 )
 from calcbook.faults import Collector
 from calcbook.formulas import number_text
+from calcbook.library import vocabulary
 from calcbook.library.operations import run
 from calcbook.properties import FluidAtPressure, PropertyFault
+from calcbook.quantities import unit_display
 
 Array = np.ndarray
 ICE_POINT = 273.15
@@ -59,6 +61,7 @@ def stream_findings(
     run(chain.steps, values)
     _check_surfaces(chain, values, collector)
     _check_directions(chain, values, collector, case)
+    _check_flows(chain, values, collector, case)
     items: list[OpenItem] = []
     for state in chain.streams.values():
         run(
@@ -84,6 +87,27 @@ def stream_findings(
             items += _state_items(state, fluid, float(values[bound]), phase, place, case, collector)
     _check_gaps(chain, values, collector, case)
     return tuple(items)
+
+
+def _check_flows(chain: Chain, values: Mapping[str, Any], collector: Collector, case: str) -> None:
+    """That a film of forced flow has one; a stream of the duty is looked at there."""
+    duty = chain.calculation.duty
+    told = {side.stream for side in duty.sides.values()} if duty is not None else set()
+    for group in (chain.inner, chain.outer):
+        for branch in group.branches:
+            if branch.situation is None or branch.situation.flow != "forced" or branch.stream in told:
+                continue
+            state = chain.streams[branch.stream]
+            flow = values.get(state.flow)
+            if flow is not None and float(flow) <= 0.0:
+                where = f"case {case}: " if case else ""
+                collector.add(
+                    "flow-missing",
+                    state.place,
+                    f"{where}{branch.name} is a film of forced flow, and stream {state.name} has none",
+                    found=f"{number_text(float(flow), 4)} {unit_display(vocabulary()[state.flow_kind].unit)}",
+                    expected=f"a {state.flow_kind} above zero, or a situation of free flow",
+                )
 
 
 def ends_of(chain: Chain, stream: str) -> list[tuple[str, str]]:
