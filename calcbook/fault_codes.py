@@ -81,6 +81,7 @@ CODES: dict[str, str] = {
     "relation-too-deep": "nested more deeply than a relation may be",
     "derivative-unknown": "a derivative that the formulas cannot express",
     "dimension-slip": "quantities joined whose dimensions do not fit",
+    "derived-not-possible": "a derived quantity without a value, or with one that its kind cannot have",
     "derived-circular": "derived quantities that need each other in a circle",
     "symbol-unknown": "a symbol that nothing assigns",
     "fluid-unknown": "a fluid that the backend does not have: see the nearest names",

@@ -215,6 +215,9 @@ class _Builder:
             checks=tuple(self.checks),
             assumptions=tuple(scope.assumptions.values()),
             open_items=tuple(scope.open_items.values()),
+            derived_kinds={
+                symbol: scope.kinds[symbol] for symbol in self.calculation.derived if symbol in scope.kinds
+            },
             used_in={symbol: tuple(dict.fromkeys(places)) for symbol, places in scope.used_in.items()},
             cards=dict(scope.cards),
             results=results,

@@ -62,6 +62,7 @@ def stream_findings(
     _check_surfaces(chain, values, collector)
     _check_directions(chain, values, collector, case)
     _check_flows(chain, values, collector, case)
+    _check_derived(chain, values, collector, case)
     items: list[OpenItem] = []
     for state in chain.streams.values():
         run(
@@ -108,6 +109,27 @@ def _check_flows(chain: Chain, values: Mapping[str, Any], collector: Collector, 
                     found=f"{number_text(float(flow), 4)} {unit_display(vocabulary()[state.flow_kind].unit)}",
                     expected=f"a {state.flow_kind} above zero, or a situation of free flow",
                 )
+
+
+def _check_derived(chain: Chain, values: Mapping[str, Any], collector: Collector, case: str) -> None:
+    """That every derived quantity has a value, and one that a quantity of its kind can have."""
+    for symbol, item in chain.calculation.derived.items():
+        if f"derived/{symbol}" not in values:
+            continue
+        kind, value = chain.derived_kinds.get(symbol), float(values[f"derived/{symbol}"])
+        least, most = kind.bounds if kind is not None else (-math.inf, math.inf)
+        sign = kind.sign if kind is not None and kind.reading != "gauge" else "any"
+        signed = value > 0.0 if sign == "positive" else value >= 0.0 or sign == "any"
+        if not (math.isfinite(value) and signed and least <= value <= most):
+            name = f"{kind.name} " if kind is not None else ""
+            must = {"positive": " above zero", "not negative": " of zero or more"}.get(sign, "")
+            collector.add(
+                "derived-not-possible",
+                item.place,
+                f"{f'case {case}: ' if case else ''}the {name}{symbol} that is derived here cannot be",
+                found=number_text(value, 4) if math.isfinite(value) else "no finite value",
+                expected=f"a finite value{must}",
+            )
 
 
 def ends_of(chain: Chain, stream: str) -> list[tuple[str, str]]:

@@ -166,6 +166,7 @@ class Scope:
                 expected=kind.unit,
             )
             return ""
+        self.kinds.setdefault(value.symbol, kind)
         return name
 
     def _given(self, given: Given, kind: QuantityKind, owner: str, key: str) -> str:

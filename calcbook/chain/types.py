@@ -326,6 +326,7 @@ class Chain:
     open_figures: tuple[OpenFigure, ...] = ()
     growing: tuple[Growing, ...] = ()
     in_service: Mapping[str, str] = field(default_factory=dict)
+    derived_kinds: Mapping[str, QuantityKind] = field(default_factory=dict)
 
     @cached_property
     def memory(self) -> dict[object, Any]:
