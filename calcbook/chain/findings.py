@@ -63,6 +63,7 @@ def stream_findings(
     _check_directions(chain, values, collector, case)
     _check_flows(chain, values, collector, case)
     _check_derived(chain, values, collector, case)
+    _check_factors(chain, values, collector, case)
     items: list[OpenItem] = []
     for state in chain.streams.values():
         run(
@@ -130,6 +131,31 @@ def _check_derived(chain: Chain, values: Mapping[str, Any], collector: Collector
                 found=number_text(value, 4) if math.isfinite(value) else "no finite value",
                 expected=f"a finite value{must}",
             )
+
+
+def _check_factors(chain: Chain, values: Mapping[str, Any], collector: Collector, case: str) -> None:
+    """That what a stated coefficient scales with is a finite factor above zero."""
+    terms = {term.name: term for term in chain.calculation.resistances}
+    for group in (chain.inner, chain.outer):
+        for branch in group.branches:
+            steps = [
+                step
+                for candidate in branch.candidates
+                for step in candidate.steps
+                if step.id == f"{branch.name}/factor"
+            ]
+            known = {**values}
+            run([step for step in steps if all(bound in known for bound in step.inputs.values())], known)
+            factor = float(known.get(f"{branch.name}/factor", 1.0))
+            if not (math.isfinite(factor) and factor > 0.0):
+                term = terms.get(branch.name)
+                collector.add(
+                    "derived-not-possible",
+                    term.place_of("scales with") if term is not None else chain.calculation.place,
+                    f"{f'case {case}: ' if case else ''}the factor that {branch.name} scales with cannot be",
+                    found=number_text(factor, 4) if math.isfinite(factor) else "no finite value",
+                    expected="a finite value above zero",
+                )
 
 
 def ends_of(chain: Chain, stream: str) -> list[tuple[str, str]]:
