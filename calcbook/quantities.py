@@ -223,6 +223,12 @@ class QuantityKind(NamedTuple):
         """The least and the greatest value in SI that its definition allows; infinite where there is none."""
         return _bound(self.least, -math.inf), _bound(self.most, math.inf)
 
+    def allows(self, value: float) -> bool:
+        """Whether the quantity can have an SI value, by its sign and its definition."""
+        least, most = self.bounds
+        above = value > 0.0 if self.sign == "positive" else value >= 0.0
+        return (above or self.sign == "any" or self.reading == "gauge") and least <= value <= most
+
 
 class Quantity(NamedTuple):
     """A number with its unit: the SI value, and the text as it was typed (blanks collapsed).
@@ -1092,9 +1098,13 @@ def in_unit(value_si: float, unit_text: str, point: bool = False) -> float:
     if not math.isfinite(value_si):
         raise ValueError(f"{value_si} cannot be expressed in {unit_text}")
     unit = _understood(unit_text)[0]
-    atom = _atom(unit.sole_name) if point else None
-    offset = atom.offset if atom else Fraction(0)
-    return float((Fraction(value_si) - offset) / unit.factor)
+    return float((Fraction(value_si) - (_offset(unit) if point else 0)) / unit.factor)
+
+
+def _offset(unit: _Unit) -> Fraction:
+    """Where the scale of a unit by itself starts, in SI; zero for one without a scale."""
+    atom = _atom(unit.sole_name)
+    return atom.offset if atom else Fraction(0)
 
 
 def si_value(number: Decimal, unit_text: str) -> float:
@@ -1103,8 +1113,7 @@ def si_value(number: Decimal, unit_text: str) -> float:
     degC and degF are points of their scales; a gauge unit only names the unit. Raises ``QuantityFault``.
     """
     unit = _understood(unit_text)[0]
-    atom = _atom(unit.sole_name) if unit.sole_name in POINT_SCALES else None
-    return float(Fraction(number) * unit.factor + (atom.offset if atom else 0))
+    return float(Fraction(number) * unit.factor + _offset(unit))
 
 
 def display_unit(kind: QuantityKind, units: Literal["SI", "US customary"]) -> str:

@@ -2,13 +2,21 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from dataclasses import replace
 
 import numpy as np
 
 from calcbook.chain.solve import Solution, solve
-from calcbook.chain.types import SERVICE, Branch, Candidate, Chain, Group, follows_temperature
+from calcbook.chain.types import (
+    SERVICE,
+    Branch,
+    Candidate,
+    Chain,
+    Group,
+    following_elements,
+    follows_temperature,
+)
 
 
 def alternatives(chain: Chain, branch: Branch, others: Sequence[Candidate], base: Solution) -> list[Solution]:
@@ -49,17 +57,12 @@ def _together(chain: Chain, branch: Branch, others: Sequence[Candidate], base: S
     first = next(iter(inputs))
     inputs[first] = np.full(len(others), float(inputs[first]))
     changed_chain = replace(chain, elements=elements)
-    near = base.unknowns if moving_elements(changed_chain) == moving_elements(chain) else None
+    is_near = following_elements(changed_chain) == following_elements(chain)
     solution = solve(
         changed_chain,
         inputs,
         SERVICE,
         choices={branch.name: np.arange(len(others))},
-        start=None if near is None else np.repeat(near, len(others), axis=1),
+        start=base.unknowns_for(len(others)) if is_near else None,
     )
     return [solution.sample(number) for number in range(len(others))]
-
-
-def moving_elements(chain: Chain, forced: Mapping[str, Candidate] | None = None) -> list[str]:
-    """The elements whose resistance follows their temperatures, with candidates ``forced`` in place of a film's own."""
-    return [element.name for element in chain.elements if follows_temperature(element, forced)]

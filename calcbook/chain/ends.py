@@ -26,6 +26,11 @@ class EndState:
     solution: Solution
 
 
+def has_ends(chain: Chain) -> bool:
+    """Whether the circuit can be closed at the ends of a duty as well."""
+    return chain.calculation.duty is not None and chain.has_temperatures
+
+
 def end_states(
     chain: Chain, inputs: Mapping[str, Array], solutions: Mapping[str, Solution], thorough: bool = True
 ) -> tuple[EndState, ...]:
@@ -35,7 +40,7 @@ def end_states(
     circuit does not close at an end, its solution has not converged. ``thorough`` is that of ``solve``.
     """
     duty = chain.calculation.duty
-    if duty is None or not chain.has_temperatures:
+    if duty is None or not has_ends(chain):
         return ()
     any_solution = next(iter(solutions.values()))
     size = any_solution.converged.size

@@ -26,7 +26,7 @@ from calcbook.chain.types import (
     RunnerAssumption,
     StreamState,
 )
-from calcbook.faults import Collector
+from calcbook.faults import Collector, Place
 from calcbook.formulas import number_text
 from calcbook.library import vocabulary
 from calcbook.library.operations import run
@@ -35,6 +35,8 @@ from calcbook.quantities import unit_display
 
 Array = np.ndarray
 ICE_POINT = 273.15
+# What a quantity of a sign must be, in words.
+SIGNS = {"positive": " above zero", "not negative": " of zero or more"}
 # Stands for a figure that a state does not have: none that it has is negative.
 UNKNOWN = -1.0
 # A pure fluid's two sides of saturation meet within rounding; a blend's dew point lies above by more than this, K.
@@ -118,44 +120,35 @@ def _check_derived(chain: Chain, values: Mapping[str, Any], collector: Collector
         if f"derived/{symbol}" not in values:
             continue
         kind, value = chain.derived_kinds.get(symbol), float(values[f"derived/{symbol}"])
-        least, most = kind.bounds if kind is not None else (-math.inf, math.inf)
-        sign = kind.sign if kind is not None and kind.reading != "gauge" else "any"
-        signed = value > 0.0 if sign == "positive" else value >= 0.0 or sign == "any"
-        if not (math.isfinite(value) and signed and least <= value <= most):
-            name = f"{kind.name} " if kind is not None else ""
-            must = {"positive": " above zero", "not negative": " of zero or more"}.get(sign, "")
-            collector.add(
-                "derived-not-possible",
-                item.place,
-                f"{f'case {case}: ' if case else ''}the {name}{symbol} that is derived here cannot be",
-                found=number_text(value, 4) if math.isfinite(value) else "no finite value",
-                expected=f"a finite value{must}",
-            )
+        if not math.isfinite(value) or (kind is not None and not kind.allows(value)):
+            what = f"the {f'{kind.name} ' if kind is not None else ''}{symbol} that is derived here"
+            must = SIGNS.get(kind.sign, "") if kind is not None else ""
+            _report_derived(item.place, what, value, must, collector, case)
 
 
 def _check_factors(chain: Chain, values: Mapping[str, Any], collector: Collector, case: str) -> None:
     """That what a stated coefficient scales with is a finite factor above zero."""
-    terms = {term.name: term for term in chain.calculation.resistances}
-    for group in (chain.inner, chain.outer):
-        for branch in group.branches:
-            steps = [
-                step
-                for candidate in branch.candidates
-                for step in candidate.steps
-                if step.id == f"{branch.name}/factor"
-            ]
-            known = {**values}
-            run([step for step in steps if all(bound in known for bound in step.inputs.values())], known)
-            factor = float(known.get(f"{branch.name}/factor", 1.0))
-            if not (math.isfinite(factor) and factor > 0.0):
-                term = terms.get(branch.name)
-                collector.add(
-                    "derived-not-possible",
-                    term.place_of("scales with") if term is not None else chain.calculation.place,
-                    f"{f'case {case}: ' if case else ''}the factor that {branch.name} scales with cannot be",
-                    found=number_text(factor, 4) if math.isfinite(factor) else "no finite value",
-                    expected="a finite value above zero",
-                )
+    terms = [one for term in chain.calculation.resistances for one in (term, *term.branches)]
+    for term in (term for term in terms if term.scales_with is not None):
+        known = {**values}
+        steps = [step for step in film_steps(chain) if step.id == f"{term.name}/factor"]
+        run([step for step in steps if known.keys() >= set(step.inputs.values())], known)
+        factor = float(known.get(f"{term.name}/factor", 1.0))
+        if not (math.isfinite(factor) and factor > 0.0):
+            what = f"the factor that {term.name} scales with"
+            _report_derived(term.place_of("scales with"), what, factor, SIGNS["positive"], collector, case)
+
+
+def _report_derived(
+    place: Place, what: str, value: float, must: str, collector: Collector, case: str
+) -> None:
+    collector.add(
+        "derived-not-possible",
+        place,
+        f"{f'case {case}: ' if case else ''}{what} cannot be",
+        found=number_text(value, 4) if math.isfinite(value) else "no finite value",
+        expected=f"a finite value{must}",
+    )
 
 
 def ends_of(chain: Chain, stream: str) -> list[tuple[str, str]]:

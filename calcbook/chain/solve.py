@@ -26,7 +26,7 @@ from calcbook.chain.types import (
     ChainStep,
     Group,
     Layer,
-    follows_temperature,
+    following_elements,
 )
 from calcbook.formulas import evaluate
 from calcbook.library.operations import Slopes, Together, run
@@ -79,6 +79,10 @@ class Solution:
     def sample(self, number: int) -> Solution:
         """One sample as the solution of a single record."""
         return self._taken(lambda row: np.asarray(row[number]))
+
+    def unknowns_for(self, count: int) -> Array | None:
+        """The unknowns of a single record, as so many like circuits begin from them."""
+        return None if self.unknowns is None else np.broadcast_to(self.unknowns, (len(self.unknowns), count))
 
     def _taken(self, take: Callable[[Array], Array]) -> Solution:
         """The figures that are left of every row of samples; what does not vary stays as it is."""
@@ -271,7 +275,6 @@ class _Parted:
     """Ways to a film coefficient that act side by side: the steps that all take, then those of each alone."""
 
     common: tuple[ChainStep | Together, ...]
-    common_ids: frozenset[str]
     rests: tuple[tuple[ChainStep | Together, ...], ...]
     own: tuple[tuple[ChainStep, ...], ...]
 
@@ -281,7 +284,7 @@ class _Parted:
         ids = frozenset.intersection(*(frozenset(step.id for step in way) for way in ways))
         own = tuple(tuple(step for step in way if step.id not in ids) for way in ways)
         common = joined([step for step in ways[0] if step.id in ids])
-        return cls(common, ids, tuple(joined(rest) for rest in own), own)
+        return cls(common, tuple(joined(rest) for rest in own), own)
 
 
 class _Order:
@@ -340,7 +343,7 @@ class Engine:
         self.values[SERVICE_FLAG] = np.asarray(float(condition != CLEAN))
         self.values.update(inputs)
         # Fins follow the coefficient of their film: outside they are closed after it and stand before it.
-        follows = {element.name for element in chain.elements if follows_temperature(element, forced)}
+        follows = set(following_elements(chain, forced))
         moving = [
             element
             for element in chain.elements
@@ -816,13 +819,12 @@ class Engine:
         coefficient = np.full(self.size, np.nan)
         shared = {step.id for step in branch.choice_steps}
         gathered: dict[str, Array] = {}
-        candidates = [branch.candidates[method] for method in numbers_in(choice)]
+        methods = numbers_in(choice)
+        candidates = [branch.candidates[method] for method in methods]
         orders = [self._stay(candidate.steps, _moving(group)) for candidate in candidates]
         parted = self._parted([order.following for order in orders])
         run(parted.common, self.values)
-        for method, candidate, rest, own in zip(
-            numbers_in(choice), candidates, parted.rests, parted.own, strict=True
-        ):
+        for method, candidate, rest, own in zip(methods, candidates, parted.rests, parted.own, strict=True):
             samples = np.flatnonzero(choice == method)
             names = {bound for step in own for bound in step.inputs.values()} | {candidate.coefficient}
             part = {name: self.at(name, samples) for name in names if name in self.values}

@@ -397,6 +397,11 @@ def follows_temperature(element: Element, forced: Mapping[str, Candidate] | None
     )
 
 
+def following_elements(chain: Chain, forced: Mapping[str, Candidate] | None = None) -> list[str]:
+    """The names of the elements whose resistance follows their temperatures; ``forced`` as there."""
+    return [element.name for element in chain.elements if follows_temperature(element, forced)]
+
+
 __all__ = [
     "CLEAN",
     "CONDITIONS",
@@ -420,5 +425,6 @@ __all__ = [
     "RunnerAssumption",
     "StreamState",
     "Surface",
+    "following_elements",
     "follows_temperature",
 ]

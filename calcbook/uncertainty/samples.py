@@ -11,7 +11,8 @@ import numpy as np
 from calcbook.chain.about_state import about_state
 from calcbook.chain.checks import NOT_EVALUABLE, OUTSIDE, check_states
 from calcbook.chain.completing import completed
-from calcbook.chain.ends import PLACES, end_states
+from calcbook.chain.ends import PLACES, end_states, has_ends
+from calcbook.chain.findings import ends_of
 from calcbook.chain.samples import Samples, mark_directions, mark_walls
 from calcbook.chain.solve import UNKNOWNS, Solution, closed
 from calcbook.chain.types import Branch, Chain, ChainCheck, Group, Layer, StreamState
@@ -225,23 +226,6 @@ def mark_of(one: Limited) -> str:
     return f"{one.condition}: {one.id}"
 
 
-def _spread(unknowns: Array | None, size: int) -> Array | None:
-    """The unknowns of one circuit for every sample."""
-    return None if unknowns is None else np.broadcast_to(unknowns, (len(unknowns), size))
-
-
-def _has_ends(chain: Chain) -> bool:
-    """Whether a unit has ends with temperatures of their own."""
-    return chain.calculation.duty is not None and chain.has_temperatures
-
-
-def _end_temperatures(chain: Chain) -> set[str]:
-    """The ids of the temperatures at both ends of a duty's sides."""
-    duty = chain.calculation.duty
-    names = [f"T {side} {end}" for side in (duty.sides if duty else ()) for end in ("inlet", "outlet")]
-    return {chain.results[name] for name in names if name in chain.results}
-
-
 def _bulks(group: Group) -> set[str]:
     return {group.bulk, *(branch.reference for branch in group.branches)}
 
@@ -263,8 +247,7 @@ class ChainModel:
         self.chain = about_state(chain, first.values)
         self.phases = phases(chain, first)
         self.inputs = inputs
-        # Samples lie about the stated figures: their circuits are begun from where those closed.
-        self.starts = {condition: solution.unknowns for condition, solution in base.items()}
+        self.base = base
         self.results = tuple(results)
         self.statements = tuple(statements)
         wanted = (*results, *(statement.result for statement in statements))
@@ -274,7 +257,8 @@ class ChainModel:
         self.limits: tuple[Limited, ...] = ()
         for condition in self.conditions if limits else ():
             walls = wall_phases(chain, base[condition], condition)
-            at_ends = [replace(wall, place=place) for wall in walls for place in PLACES if _has_ends(chain)]
+            places = PLACES if has_ends(chain) else ()
+            at_ends = [replace(wall, place=place) for wall in walls for place in places]
             self.limits = (*self.limits, *watched(chain, condition), *walls, *at_ends)
         self.keep = {
             *(step for one in wanted for _, step in one.parts.values()),
@@ -286,7 +270,7 @@ class ChainModel:
         }
         self.looks_at_ends = any(one.place for one in self.limits)
         if self.looks_at_ends:
-            self.keep |= {UNKNOWNS, *_end_temperatures(chain)}
+            self.keep |= {UNKNOWNS, *(bound for name in chain.streams for _, bound in ends_of(chain, name))}
 
     def outputs(self, drawn: Mapping[str, Array]) -> dict[str, Array]:
         """The results alone, NaN where a sample has no answer."""
@@ -314,7 +298,8 @@ class ChainModel:
                 whole,
                 condition,
                 keep=self.keep,
-                start=_spread(self.starts.get(condition), size),
+                # Samples lie about the stated figures: their circuits are begun from where those closed.
+                start=self.base[condition].unknowns_for(size),
             )
             for condition in self.conditions
         }

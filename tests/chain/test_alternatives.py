@@ -7,9 +7,9 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from calcbook.chain.alternatives import alternatives, moving_elements, needs_temperatures
+from calcbook.chain.alternatives import alternatives, needs_temperatures
 from calcbook.chain.solve import solve
-from calcbook.chain.types import SERVICE
+from calcbook.chain.types import SERVICE, following_elements
 from calcbook.interface import solve_file
 
 CALCS = Path(__file__).resolve().parents[2] / "calcs"
@@ -30,7 +30,7 @@ def test_together_and_alone_give_the_same_bits(name: str) -> None:
             assert len(found) == len(others)
             for other, together in zip(others, found, strict=True):
                 forced = {branch.name: other}
-                is_near = moving_elements(chain, forced) == moving_elements(chain)
+                is_near = following_elements(chain, forced) == following_elements(chain)
                 alone = solve(chain, inputs, SERVICE, forced, start=base.unknowns if is_near else None)
                 assert bool(together.converged) == bool(alone.converged), other.method.id
                 if not bool(alone.converged):
