@@ -31,7 +31,7 @@ from calcbook.formulas import number_text
 from calcbook.library import vocabulary
 from calcbook.library.operations import run
 from calcbook.properties import FluidAtPressure, PropertyFault
-from calcbook.quantities import unit_display
+from calcbook.quantities import si_unit, unit_display
 
 Array = np.ndarray
 ICE_POINT = 273.15
@@ -123,7 +123,8 @@ def _check_derived(chain: Chain, values: Mapping[str, Any], collector: Collector
         if not math.isfinite(value) or (kind is not None and not kind.allows(value)):
             what = f"the {f'{kind.name} ' if kind is not None else ''}{symbol} that is derived here"
             must = SIGNS.get(kind.sign, "") if kind is not None else ""
-            _report_derived(item.place, what, value, must, collector, case)
+            unit = kind.unit if kind is not None else si_unit(chain.dimensions[f"derived/{symbol}"])
+            _report_derived(item.place, what, value, unit, must, collector, case)
 
 
 def _check_factors(chain: Chain, values: Mapping[str, Any], collector: Collector, case: str) -> None:
@@ -136,17 +137,21 @@ def _check_factors(chain: Chain, values: Mapping[str, Any], collector: Collector
         factor = float(known.get(f"{term.name}/factor", 1.0))
         if not (math.isfinite(factor) and factor > 0.0):
             what = f"the factor that {term.name} scales with"
-            _report_derived(term.place_of("scales with"), what, factor, SIGNS["positive"], collector, case)
+            _report_derived(
+                term.place_of("scales with"), what, factor, "1", SIGNS["positive"], collector, case
+            )
 
 
 def _report_derived(
-    place: Place, what: str, value: float, must: str, collector: Collector, case: str
+    place: Place, what: str, value: float, unit: str, must: str, collector: Collector, case: str
 ) -> None:
     collector.add(
         "derived-not-possible",
         place,
         f"{f'case {case}: ' if case else ''}{what} cannot be",
-        found=number_text(value, 4) if math.isfinite(value) else "no finite value",
+        found=f"{number_text(value, 4)} {unit_display(unit)}".rstrip()
+        if math.isfinite(value)
+        else "no finite value",
         expected=f"a finite value{must}",
     )
 
