@@ -3,19 +3,57 @@
 from __future__ import annotations
 
 import functools
-from collections.abc import Callable, Iterable, Mapping
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
 
 from calcbook import properties
 from calcbook.calcfile.calculation import FluidText
-from calcbook.properties import Fluid, FluidAtPressure, PropertyFault
+from calcbook.properties import Asked, Fluid, FluidAtPressure, PropertyFault
 
 Array = np.ndarray
-Read = Callable[[FluidAtPressure, Array], Array]
 FRACTION_STEP = 1e-4
-FEW_STATES = 8
+# States that many samples have are found without sorting the samples, up to so many states.
+FEW_STATES, MANY_SAMPLES = 8, 64
+
+
+@dataclass(frozen=True)
+class EachState:
+    """A reading that takes the states one by one: one figure for every sample."""
+
+    read: Callable[[FluidAtPressure, Array], Array]
+    ahead: tuple[int, ...] = ()
+
+    def one(self, state: FluidAtPressure, temperature: Array) -> Array:
+        return self.read(state, temperature)
+
+    def several(self, states: Sequence[FluidAtPressure], place: Array, temperature: Array) -> Array:
+        result = np.empty(temperature.shape)
+        for number, state in enumerate(states):
+            chosen = place == number
+            result[chosen] = self.read(state, temperature[chosen])
+        return result
+
+
+@dataclass(frozen=True)
+class PropertyRows:
+    """A reading of properties and slopes, a row for each that is ``asked``."""
+
+    asked: tuple[Asked, ...]
+
+    @property
+    def ahead(self) -> tuple[int, ...]:
+        return (len(self.asked),)
+
+    def one(self, state: FluidAtPressure, temperature: Array) -> Array:
+        return state.rows(self.asked, temperature)
+
+    def several(self, states: Sequence[FluidAtPressure], place: Array, temperature: Array) -> Array:
+        return properties.rows_of_several(states, place, self.asked, temperature)
+
+
+Reading = EachState | PropertyRows
 
 
 @dataclass(frozen=True)
@@ -84,20 +122,17 @@ class PropertyOperation:
         return ("T", *(name for name, there in flags if there))
 
     def value(self, arguments: Mapping[str, Array]) -> Array:
-        return self.by_state(arguments, lambda state, at: state.value(self.property_name, at, outside="nan"))
+        return self.by_state(arguments, PropertyRows(((self.property_name, False),)))[0]
 
     def slopes(self, arguments: Mapping[str, Array], value: Array, wanted: Iterable[str]) -> dict[str, Array]:
         return {symbol: self._slope(symbol, arguments) for symbol in wanted}
 
     def _slope(self, symbol: str, arguments: Mapping[str, Array]) -> Array:
         if symbol == "T":
-            return self.by_state(
-                arguments, lambda state, at: state.slope(self.property_name, at, outside="nan")
-            )
+            return self.by_state(arguments, PropertyRows(((self.property_name, True),)))[0]
         if symbol == "p":
-            return self.by_state(
-                arguments, lambda state, at: state.pressure_slope(self.property_name, at, outside="nan")
-            )
+            slope = EachState(lambda state, at: state.pressure_slope(self.property_name, at, outside="nan"))
+            return self.by_state(arguments, slope)
         if symbol == "w":
             below = np.maximum(np.asarray(arguments["w"]) - FRACTION_STEP, 0.0)
             above = np.asarray(arguments["w"]) + FRACTION_STEP
@@ -105,57 +140,75 @@ class PropertyOperation:
             return (high - low) / (above - below)
         return np.zeros(np.shape(arguments["T"]))
 
-    def by_state(self, arguments: Mapping[str, Array], read: Read, rows: int = 0) -> Array:
-        """Read the samples group by group, each group at one pressure, fraction and phase.
-
-        What is read is a figure for every sample, or so many ``rows`` of them.
-        """
-        ahead = (rows,) if rows else ()
+    def by_state(self, arguments: Mapping[str, Array], reading: Reading) -> Array:
+        """Read the samples group by group, each group at one pressure, fraction and phase."""
         temperature = np.asarray(arguments["T"], dtype=float)
         varying = [np.asarray(arguments[name], dtype=float) for name in self.symbols[1:]]
         if not any([item.ndim for item in varying]):
-            return self._read([item.item() for item in varying], temperature, read, ahead)
+            return self._read([item.item() for item in varying], temperature, reading)
         state = [item.flat[0] for item in varying]
         if all([item.shape in ((), temperature.shape) for item in varying]) and all(
             [bool((item == first).all()) for item, first in zip(varying, state, strict=True)]
         ):
-            return self._read([float(first) for first in state], temperature, read, ahead)
-        return self._by_states(temperature, varying, read, ahead)
+            return self._read([float(first) for first in state], temperature, reading)
+        return self._by_states(temperature, varying, reading)
 
-    def _by_states(
-        self, temperature: Array, varying: list[Array], read: Read, ahead: tuple[int, ...]
-    ) -> Array:
+    def _by_states(self, temperature: Array, varying: list[Array], reading: Reading) -> Array:
         shape = np.broadcast_shapes(temperature.shape, *(item.shape for item in varying))
         flat = np.ascontiguousarray(np.broadcast_to(temperature, shape)).ravel()
         columns = np.stack([np.broadcast_to(item, shape).ravel() for item in varying])
-        result = np.empty((*ahead, flat.size))
+        result = np.empty((*reading.ahead, flat.size))
         waiting = np.arange(flat.size)
         # Nearly always there are few states: they are found without sorting the samples.
         for _ in range(FEW_STATES):
             state = columns[:, waiting[0]]
             here = (columns[:, waiting] == state[:, None]).all(axis=0)
             chosen = waiting[here]
-            result[..., chosen] = self._read(state.tolist(), flat[chosen], read, ahead)
+            result[..., chosen] = self._read(state.tolist(), flat[chosen], reading)
             waiting = waiting[~here]
             if not waiting.size:
-                return result.reshape(*ahead, *shape)
+                return result.reshape(*reading.ahead, *shape)
+            if len(chosen) < MANY_SAMPLES:
+                break
         states, group = np.unique(columns[:, waiting], axis=1, return_inverse=True)
-        for index in range(states.shape[1]):
-            chosen = waiting[group.ravel() == index]
-            result[..., chosen] = self._read(states[:, index].tolist(), flat[chosen], read, ahead)
-        return result.reshape(*ahead, *shape)
+        result[..., waiting] = self._read_several(states.T.tolist(), group.ravel(), flat[waiting], reading)
+        return result.reshape(*reading.ahead, *shape)
 
-    def _read(self, figures: list[float], temperature: Array, read: Read, ahead: tuple[int, ...]) -> Array:
+    def _read_several(
+        self, states: list[list[float]], place: Array, temperature: Array, reading: Reading
+    ) -> Array:
+        fluids, numbers = [], np.full(len(states), -1)
+        for number, figures in enumerate(states):
+            state = self._state(figures)
+            if state is not None:
+                numbers[number] = len(fluids)
+                fluids.append(state)
+        number_of_fluid = numbers[place]
+        known = np.flatnonzero(number_of_fluid >= 0)
+        result = np.full((*reading.ahead, temperature.size), np.nan)
+        if fluids:
+            result[..., known] = reading.several(fluids, number_of_fluid[known], temperature[known])
+        return result
+
+    def _read(self, figures: list[float], temperature: Array, reading: Reading) -> Array:
+        state = self._state(figures)
+        if state is None:
+            return np.full((*reading.ahead, *temperature.shape), np.nan)
+        return reading.one(state, temperature)
+
+    def _state(self, figures: list[float]) -> FluidAtPressure | None:
+        """The fluid at the figures of one state; None where it cannot have that.
+
+        Of a record's own state the fault is told before.
+        """
         named = dict(zip(self.symbols[1:], figures, strict=True))
         phase = self.phase
         if self.keeps_phase and not phase:
             phase = "liquid" if named["liquid"] else "gas"
         try:
-            state = self.source.state(named.get("p"), named.get("w"), phase)
+            return self.source.state(named.get("p"), named.get("w"), phase)
         except PropertyFault:
-            # A sample at a state that the fluid cannot have; of a record's own state the fault is told before.
-            return np.full((*ahead, *temperature.shape), np.nan)
-        return read(state, temperature)
+            return None
 
 
 @dataclass(frozen=True)
@@ -171,7 +224,7 @@ class LiquidOperation:
     def value(self, arguments: Mapping[str, Array]) -> Array:
         if self.operation.phase:
             return np.asarray(self.operation.phase == "liquid")
-        return self.operation.by_state(arguments, _is_liquid).astype(bool)
+        return self.operation.by_state(arguments, EachState(_is_liquid)).astype(bool)
 
     def slopes(self, arguments: Mapping[str, Array], value: Array, wanted: Iterable[str]) -> dict[str, Array]:
         return {symbol: np.zeros(np.shape(value)) for symbol in wanted}

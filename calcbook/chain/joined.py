@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from calcbook.chain.fluids import PropertyOperation
+from calcbook.chain.fluids import PropertyOperation, PropertyRows
 from calcbook.chain.types import ChainStep
 from calcbook.library.operations import Slopes, Together, chained, moving_symbols
 
@@ -30,8 +30,7 @@ class PropertiesTogether(Together):
         asked = [(operation.property_name, False) for operation in self.operations]
         if TEMPERATURE in moving:
             asked += [(operation.property_name, True) for operation in self.operations]
-        names = tuple(asked)
-        found = self.operations[0].by_state(arguments, lambda state, at: state.rows(names, at), len(names))
+        found = self.operations[0].by_state(arguments, PropertyRows(tuple(asked)))
         for step, value in zip(self.steps, found, strict=False):
             values[step.id] = value
         if slopes is None or not moving:

@@ -11,11 +11,13 @@ Must never: know a unit, read a calculation file, or let another room import Coo
 
 from calcbook.properties.backed import mixture, pure
 from calcbook.properties.backend import PROPERTIES, SATURATION_PROPERTIES, backend_version
+from calcbook.properties.curves import Asked
 from calcbook.properties.faults import PropertyFault
 from calcbook.properties.findings import Finding
 from calcbook.properties.fluid import Fluid, FluidAtPressure
 from calcbook.properties.humid import SATURATION_FRACTION, humid_air
 from calcbook.properties.names import fluid_names, mixture_names
+from calcbook.properties.several import rows_of_several
 from calcbook.properties.stated import Relation, ViscosityLaw, astm_d341, constant, related, tabulated
 from calcbook.properties.store import clear_memory
 
@@ -23,6 +25,7 @@ __all__ = [
     "PROPERTIES",
     "SATURATION_FRACTION",
     "SATURATION_PROPERTIES",
+    "Asked",
     "Finding",
     "Fluid",
     "FluidAtPressure",
@@ -39,5 +42,6 @@ __all__ = [
     "mixture_names",
     "pure",
     "related",
+    "rows_of_several",
     "tabulated",
 ]

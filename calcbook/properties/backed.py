@@ -19,6 +19,7 @@ from calcbook.properties.curves import (
     Asked,
     Curve,
     Family,
+    SeriesRows,
     ends_of,
 )
 from calcbook.properties.faults import PropertyFault
@@ -159,6 +160,9 @@ class IncompressibleAtPressure(_BackedAtPressure):
     def _flat_rows(self, asked: tuple[Asked, ...], temperatures: Array) -> Array:
         return self._line.rows(asked, temperatures)
 
+    def series_rows(self, asked: tuple[Asked, ...], least: float, most: float) -> SeriesRows | None:
+        return self._line.series_rows(asked, least, most)
+
 
 @dataclass(frozen=True)
 class Saturated(_BackedAtPressure):
@@ -255,6 +259,9 @@ class Saturated(_BackedAtPressure):
 
     def _flat_rows(self, asked: tuple[Asked, ...], temperatures: Array) -> Array:
         return self.curve().rows(asked, temperatures)
+
+    def series_rows(self, asked: tuple[Asked, ...], least: float, most: float) -> SeriesRows | None:
+        return self.curve().series_rows(asked, least, most)
 
 
 @dataclass(frozen=True)
@@ -362,6 +369,12 @@ class PureAtPressure(_BackedAtPressure):
         for chosen, curve, _ in self._curves(temperatures):
             result[:, chosen] = curve.rows(asked, temperatures[chosen])
         return result
+
+    def series_rows(self, asked: tuple[Asked, ...], least: float, most: float) -> SeriesRows | None:
+        curve = self._curve_at(least)
+        if curve is None or curve is not self._curve_at(most):
+            return None
+        return curve.series_rows(asked, least, most)
 
     def _flat_one(self, property_name: str, temperature: Array, sloped: bool) -> Array:
         at = temperature.item()

@@ -8,7 +8,7 @@ so panels can be made when first needed, and kept.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import NamedTuple
 
@@ -52,7 +52,7 @@ class _Panel(NamedTuple):
     coefficients: list[float]
 
 
-class _Rows(NamedTuple):
+class SeriesRows(NamedTuple):
     """Series of several properties, and slopes, laid out to be summed together: a row of figures each.
 
     ``low`` and ``high`` are the ends of the stretch that every one of their panels holds, ``middle`` and ``half``
@@ -79,10 +79,10 @@ class Curve:
     store: Store
     families: tuple[Family, ...]
     _sloped: dict[tuple[str, str], list[float]] = field(init=False, repr=False, default_factory=dict)
-    _laid_out: dict[tuple[tuple[Asked, ...], tuple[str, ...]], _Rows] = field(
+    _laid_out: dict[tuple[tuple[Asked, ...], tuple[str, ...]], SeriesRows] = field(
         init=False, repr=False, default_factory=dict
     )
-    _last: dict[tuple[Asked, ...], _Rows] = field(init=False, repr=False, default_factory=dict)
+    _last: dict[tuple[Asked, ...], SeriesRows] = field(init=False, repr=False, default_factory=dict)
 
     def value(self, name: str, temperatures: Array) -> Array:
         """The property at temperatures (1-d, all within the interval); NaN where the backend fails."""
@@ -111,13 +111,14 @@ class Curve:
         rows = self._rows_of(asked, least, most) if temperatures.size > 1 else None
         if rows is None:
             return np.stack([self._walk(name, temperatures, sloped) for name, sloped in asked])
-        result = series.evaluate_rows(rows.coefficients, rows.middle, rows.half, temperatures)
-        result[rows.logged] = np.exp(result[rows.logged])
-        result[rows.sloped] = result[rows.of] * result[rows.sloped]
-        return result[: len(asked)]
+        sums = series.evaluate_rows(rows.coefficients, rows.middle, rows.half, temperatures)
+        return _from_sums(rows, sums)[: len(asked)]
 
-    def _rows_of(self, asked: tuple[Asked, ...], least: float, most: float) -> _Rows | None:
+    def series_rows(self, asked: tuple[Asked, ...], least: float, most: float) -> SeriesRows | None:
         """The series of ``asked`` for a stretch of temperatures; None where one panel of each does not hold it."""
+        return self._rows_of(asked, least, most) if self.low <= least <= most <= self.high else None
+
+    def _rows_of(self, asked: tuple[Asked, ...], least: float, most: float) -> SeriesRows | None:
         last = self._last.get(asked)
         # A temperature between two panels belongs to the hotter one.
         if last is not None and last.low <= least and most < last.high:
@@ -153,7 +154,7 @@ class Curve:
             path, low, high = (path + "0", low, middle) if most < middle else (path + "1", middle, high)
         return _Panel(path, low, high, coefficients) if coefficients is not None else None
 
-    def _lay_out(self, asked: tuple[Asked, ...], panels: list[_Panel]) -> _Rows:
+    def _lay_out(self, asked: tuple[Asked, ...], panels: list[_Panel]) -> SeriesRows:
         """The series of ``asked``, then those of the values that logarithmic slopes need and were not asked for."""
         needed = dict(zip(asked, panels, strict=True))
         for (name, sloped), panel in zip(asked, panels, strict=True):
@@ -174,7 +175,7 @@ class Curve:
         )
         if (low == low[0]).all() and (high == high[0]).all():
             low, high = low[:1], high[:1]
-        return _Rows(
+        return SeriesRows(
             float(low.max()),
             float(high.min()),
             coefficients,
@@ -282,6 +283,29 @@ class Curve:
             if name in family.properties:
                 return family
         raise PropertyFault("property-missing", f"no {name} along this curve")
+
+
+def side_by_side(several: Sequence[SeriesRows], place: Array, temperatures: Array) -> Array:
+    """Values and slopes of samples that each lie on one of several curves, of which the same was asked.
+
+    ``place`` is the number of each sample's curve. The bits are those of each curve alone.
+    """
+    first = several[0]
+    terms, count = max(len(rows.coefficients) for rows in several), first.coefficients.shape[1]
+    coefficients = np.zeros((terms, count, len(several)))
+    middle, half = np.empty((2, count, len(several)))
+    for number, rows in enumerate(several):
+        coefficients[: len(rows.coefficients), :, number] = rows.coefficients[:, :, 0]
+        middle[:, number], half[:, number] = rows.middle[:, 0], rows.half[:, 0]
+    sums = series.evaluate_rows(coefficients[:, :, place], middle[:, place], half[:, place], temperatures)
+    return _from_sums(first, sums)
+
+
+def _from_sums(rows: SeriesRows, sums: Array) -> Array:
+    """Values and slopes from the sums of their series (which are written over)."""
+    sums[rows.logged] = np.exp(sums[rows.logged])
+    sums[rows.sloped] = sums[rows.of] * sums[rows.sloped]
+    return sums
 
 
 def ends_of(temperatures: Array) -> tuple[float, float]:

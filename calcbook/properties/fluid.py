@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import ArrayLike
 
 from calcbook.properties.backend import PROPERTIES
-from calcbook.properties.curves import Asked
+from calcbook.properties.curves import Asked, SeriesRows
 from calcbook.properties.faults import PropertyFault
 from calcbook.properties.findings import Finding
 from calcbook.properties.series import Array
@@ -90,6 +90,10 @@ class FluidAtPressure(ABC):
 
     def _flat_rows(self, asked: tuple[Asked, ...], temperatures: Array) -> Array:
         return np.stack([self._flat(name, temperatures, sloped) for name, sloped in asked])
+
+    def series_rows(self, asked: tuple[Asked, ...], least: float, most: float) -> SeriesRows | None:
+        """The series that answer a stretch of temperatures; None where it is not answered by one of each."""
+        return None
 
     def values_at(
         self, property_name: str, temperature: ArrayLike, pressure: ArrayLike, *, outside: Outside = "fault"

@@ -71,8 +71,9 @@ def evaluate(coefficients: Sequence[float], low: float, high: float, at: Array) 
 def evaluate_rows(coefficients: Array, middle: Array, half: Array, at: Array) -> Array:
     """The sums of several series at the same points (1-d), a row each, to the same bits as one by one.
 
-    ``coefficients`` have a series in each column (terms, series, 1); a shorter one ends in zeros. ``middle`` and
-    ``half`` are the middle and half the width of each interval, (series, 1), or (1, 1) of the one that all share.
+    ``coefficients`` have a series in each column (terms, series, 1), or one of its own for every point (terms,
+    series, points); a shorter one ends in zeros. ``middle`` and ``half`` are the middle and half the width of each
+    interval, (series, 1) or (series, points), or (1, 1) of the one that all share.
     """
     x = (at - middle) / half
     double = x + x

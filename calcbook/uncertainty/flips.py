@@ -260,19 +260,14 @@ class _Search:
         self._evaluate([(line, line.reach.figures) for line in self.lines if line.reach.figures], first=True)
 
     def _evaluate(self, wanted: list[tuple[_Line, tuple[float, ...]]], first: bool = False) -> None:
-        """Evaluate new figures of lines, in one call; those with fluid states of their own in another.
-
-        The ``first`` call starts with the cases as they stand.
-        """
-        for changes_state in (False, True):
-            part = [(line, figures) for line, figures in wanted if line.changes_state == changes_state]
-            ahead = len(self.cases) if first and not changes_state else 0
-            if not part and not ahead:
-                continue
-            place = self._solve(part, ahead)
-            for line, figures in part:
-                line.takes(figures, place)
-                place += len(figures)
+        """Evaluate new figures of lines, in one call; the ``first`` call starts with the cases as they stand."""
+        ahead = len(self.cases) if first else 0
+        if not wanted and not ahead:
+            return
+        place = self._solve(wanted, ahead)
+        for line, figures in wanted:
+            line.takes(figures, place)
+            place += len(figures)
 
     def _solve(self, part: list[tuple[_Line, tuple[float, ...]]], ahead: int) -> int:
         """Solve figures of lines after ``ahead`` cases as they stand; the place of the first figure."""

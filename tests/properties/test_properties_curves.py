@@ -6,7 +6,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from calcbook.properties import PROPERTIES, PropertyFault, mixture, pure
+from calcbook.properties import PROPERTIES, PropertyFault, mixture, pure, rows_of_several, tabulated
 from calcbook.properties import series as chebyshev
 
 KEYS = {"density": "Dmass", "viscosity": "V", "conductivity": "L", "heat capacity": "Cpmass"}
@@ -269,6 +269,33 @@ def test_properties_read_together_have_the_bits_of_each_alone(name, pressure, ph
         for row, (quantity, sloped) in zip(together, asked, strict=True):
             alone = (fluid.slope if sloped else fluid.value)(quantity, temperatures, outside="nan")
             np.testing.assert_array_equal(row, alone)
+
+
+@pytest.mark.parametrize("size", [40, 3000])
+def test_several_fluids_read_at_once_have_the_bits_of_each_alone(size):
+    # A state within one panel, one beyond its curve's end, one cut by boiling, a saturated one, a liquid without
+    # a vapour, and one that no series answers; one of them with a single sample.
+    rows = [293.15, 333.15]
+    table = {"density": (rows, [998.2, 983.2]), "viscosity": (rows, [1.002e-3, 0.466e-3])}
+    fluids = [
+        pure("water").at(4e5, "liquid"),
+        pure("water").at(1.7e5, "liquid"),
+        pure("water").at(1e3, "liquid"),
+        pure("water").at(None, "liquid"),
+        mixture("ethylene glycol + water", "mass fraction", 0.3).at(2e5, "liquid"),
+        tabulated(table).at(2e5, "liquid"),
+    ]
+    asked = tuple((name, sloped) for name in ("viscosity", "density") for sloped in (False, True))
+    draw = np.random.default_rng(3)
+    place = draw.integers(0, len(fluids) - 1, size)
+    place[:2] = len(fluids) - 1, 0
+    temperatures = draw.uniform(280.0, 330.0, size)
+    temperatures[place == 1] = draw.uniform(370.0, 410.0, int((place == 1).sum()))
+    temperatures[5] = np.nan
+    together = rows_of_several(fluids, place, asked, temperatures)
+    for number, fluid in enumerate(fluids):
+        own = place == number
+        np.testing.assert_array_equal(together[:, own], fluid.rows(asked, temperatures[own]))
 
 
 def test_a_slope_alone_brings_its_value_along_unseen():
