@@ -177,7 +177,8 @@ class PropertyOperation:
     def _read_several(
         self, states: list[list[float]], place: Array, temperature: Array, reading: Reading
     ) -> Array:
-        fluids, numbers = [], np.full(len(states), -1)
+        fluids: list[FluidAtPressure] = []
+        numbers = np.full(len(states), -1)
         for number, figures in enumerate(states):
             state = self._state(figures)
             if state is not None:

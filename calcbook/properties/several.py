@@ -7,7 +7,7 @@ from collections.abc import Sequence
 import numpy as np
 from numpy.typing import NDArray
 
-from calcbook.properties.curves import Asked, side_by_side
+from calcbook.properties.curves import Asked, SeriesRows, side_by_side
 from calcbook.properties.fluid import FluidAtPressure
 from calcbook.properties.series import Array
 
@@ -29,7 +29,8 @@ def rows_of_several(
     least = np.minimum.reduceat(sorted_temperatures, starts).tolist()
     most = np.maximum.reduceat(sorted_temperatures, starts).tolist()
     result = np.empty((len(asked), temperatures.size))
-    together, numbers = [], np.full(len(fluids), -1)
+    together: list[SeriesRows] = []
+    numbers = np.full(len(fluids), -1)
     for number, (fluid, low, high) in enumerate(zip(fluids, least, most, strict=True)):
         rows = fluid.series_rows(asked, low, high) if temperatures.size <= AT_ONCE else None
         if rows is None:
