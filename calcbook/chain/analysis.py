@@ -54,7 +54,7 @@ from calcbook.chain.pressure import (
     pressure_notes,
 )
 from calcbook.chain.sensitivity import derivatives
-from calcbook.chain.solve import Solution, chosen, closed, solve
+from calcbook.chain.solve import Solution, chosen, closed, halves_of, solve, solve_both
 from calcbook.chain.specified import OWNER as SPECIFIED
 from calcbook.chain.types import (
     CLEAN,
@@ -152,9 +152,10 @@ class _Analysis:
         }
         if self.collector:
             return None
+        solutions = self._solutions()
         cases = []
         for name in names:
-            case = self._case(name, findings[name])
+            case = self._case(name, findings[name], solutions[name])
             if case is None:
                 return None
             cases.append(case)
@@ -186,11 +187,31 @@ class _Analysis:
                 raise NotConverged(self.chain.calculation.number, name, SERVICE)
         return not self.collector
 
+    def _solutions(self) -> dict[str, dict[str, Solution]]:
+        """Every case clean and in service, solved together."""
+        rows = {
+            key: np.array([float(inputs[key]) for inputs in self.inputs.values()]) for key in self.inputs[""]
+        }
+        both = solve_both(
+            self.chain,
+            {key: row if (row != row[0]).any() else row[:1].reshape(()) for key, row in rows.items()},
+        )
+        evaluate_pressure_drops(self.chain, both)
+        halves = halves_of(both.converged.size // 2)
+        return {
+            name: {
+                condition: replace(both.sample(half.start + number), condition=condition)
+                for condition, half in halves.items()
+            }
+            for number, name in enumerate(self.inputs)
+        }
+
     # -- one case -----------------------------------------------------------------------------------
 
-    def _case(self, name: str, state_items: tuple[OpenItem, ...]) -> CaseOutcome | None:
+    def _case(
+        self, name: str, state_items: tuple[OpenItem, ...], solutions: dict[str, Solution]
+    ) -> CaseOutcome | None:
         inputs = self.inputs[name]
-        solutions = {condition: solve(self.chain, inputs, condition) for condition in CONDITIONS}
         for condition, solution in solutions.items():
             if not bool(np.all(solution.converged)) or not np.isfinite(
                 solution.number(self.chain.results["U"])
@@ -200,7 +221,6 @@ class _Analysis:
                 if self.collector:
                     return None
                 raise NotConverged(self.chain.calculation.number, name, condition)
-            evaluate_pressure_drops(self.chain, solution)
         ends = closed_ends(end_states(self.chain, inputs, solutions))
         results = self._results(solutions, inputs, ends)
         self.results = self.results or results

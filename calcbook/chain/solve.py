@@ -78,7 +78,9 @@ class Solution:
 
     def sample(self, number: int) -> Solution:
         """One sample as the solution of a single record."""
-        return self._taken(lambda row: np.asarray(row[number]))
+        sample = self._taken(lambda row: np.asarray(row[number]))
+        sample.unknowns = None if self.unknowns is None else self.unknowns[:, number : number + 1]
+        return sample
 
     def unknowns_for(self, count: int) -> Array | None:
         """The unknowns of a single record, as so many like circuits begin from them."""
