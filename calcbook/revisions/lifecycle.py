@@ -353,7 +353,7 @@ def changes_of(calc_path: Path, solved: Solved, output: Path, lifecycle: Lifecyc
     if copy is None:
         return ()
     from calcbook.revisions.comparison import compare, short_blocks
-    from calcbook.revisions.sides import load_issued, load_side
+    from calcbook.revisions.sides import load_issued, side_of
 
     try:
         old = load_issued(copy.number, copy.revision, output)
@@ -364,7 +364,7 @@ def changes_of(calc_path: Path, solved: Solved, output: Path, lifecycle: Lifecyc
                 " is compared."
             ),
         )
-    return tuple(short_blocks(compare(old, load_side(calc_path.name, calc_path.parent, output))))
+    return tuple(short_blocks(compare(old, side_of(solved, calc_path, output))))
 
 
 def with_issue(lifecycle: Lifecycle, copy: Issued) -> Lifecycle:

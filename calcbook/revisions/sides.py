@@ -33,7 +33,7 @@ from calcbook.revisions.seals import (
     read_seal,
 )
 
-OUTPUT = "output"
+OUTPUT, NOT_ISSUED = "output", "not issued"
 _ISSUED_COPY = re.compile(r"([A-Za-z0-9][A-Za-z0-9_.-]{0,39})@([A-Za-z0-9][A-Za-z0-9.-]{0,9})")
 
 Data = Mapping[str, object]
@@ -79,6 +79,12 @@ class Side:
         }
 
 
+# Issued copies that were solved, by folder, name and seal: their seals are looked at anew each time. `watch` compares
+# every save of a revision with the one before it.
+SEALED_KEPT = 8
+_SEALED: dict[tuple[Path, str, str], Side] = {}
+
+
 def load_side(text: str, folder: Path, output: Path) -> Side:
     """The side that a text names: a path, `NUMBER@REVISION` (an issued copy), or `git:REVISION:path`.
 
@@ -91,7 +97,18 @@ def load_side(text: str, folder: Path, output: Path) -> Side:
     if issued is not None and not (folder / text).exists():
         return load_issued(issued[1], issued[2], output)
     path = folder / text
-    side = _solved_side(path, Path(text).as_posix(), "not issued")
+    return _with_recorded(_solved_side(path, Path(text).as_posix(), NOT_ISSUED), output)
+
+
+def side_of(solved: Solved, path: Path, output: Path) -> Side:
+    """The side of a file that is solved already, as ``load_side`` gives it by the file's name in its folder.
+
+    Raises ``Faults`` where its recorded results cannot be read.
+    """
+    return _with_recorded(_side(solved, path, path.name, NOT_ISSUED), output)
+
+
+def _with_recorded(side: Side, output: Path) -> Side:
     return _with_results(side, _read_results(output / side.calculation.number / RESULTS))
 
 
@@ -120,8 +137,20 @@ def load_issued(number: str, revision: str, output: Path) -> Side:
                 )
             ]
         )
-    side = _solved_side(folder / CALCULATION, called, f"issued, {read_seal(folder).kind}")
-    return _with_results(side, _read_results(folder / RESULTS))
+    seal = read_seal(folder)
+    key = (folder.resolve(), called, seal.whole)
+    side = _SEALED.get(key)
+    if side is None:
+        side = _with_results(
+            _solved_side(folder / CALCULATION, called, f"issued, {seal.kind}"),
+            _read_results(folder / RESULTS),
+        )
+        # What it takes from others is not under its seal.
+        if not links_of(side.document.root):
+            while len(_SEALED) >= SEALED_KEPT:
+                _SEALED.pop(next(iter(_SEALED)))
+            _SEALED[key] = side
+    return side
 
 
 def output_of(path: Path, output: Path | None) -> Path:
@@ -177,7 +206,7 @@ def load_from_commit(folder: Path, revision: str, path: str) -> Side:
     target = keeper.path / commit.prefix() / inside
     target.mkdir(parents=True, exist_ok=True)
     _take_out(commit, inside, target, whole.name)
-    side = _solved_side(target / whole.name, called, "not issued", keeper)
+    side = _solved_side(target / whole.name, called, NOT_ISSUED, keeper)
     output = read_settings(target).output or OUTPUT
     recorded = commit.blob(f"{inside}/{output}/{side.calculation.number}/{RESULTS}")
     if recorded is None:
@@ -259,7 +288,10 @@ def _word(node: MappingNode, key: str) -> str:
 
 
 def _solved_side(path: Path, called: str, state: str, keeper: object = None) -> Side:
-    solved = solve_file(path, called, for_record=False)
+    return _side(solve_file(path, called, for_record=False), path, called, state, keeper)
+
+
+def _side(solved: Solved, path: Path, called: str, state: str, keeper: object = None) -> Side:
     document = read_file(path, called)
     calculation = solved.chain.calculation
     label = f"{calculation.number}, revision {calculation.revision}"

@@ -18,6 +18,7 @@ from calcbook.revisions.issuing import check_seal, issue
 from calcbook.revisions.lifecycle import lifecycle_of
 from calcbook.revisions.revising import revise
 from calcbook.revisions.seals import Issued, check_seals, issued_copies, read_seal, revision_order, seal_text
+from calcbook.revisions.sides import load_issued, load_side, side_of
 from calcbook.revisions.signing import sign
 from calcbook.revisions.signoffs import signoffs_path
 
@@ -249,6 +250,36 @@ def test_revisions_stand_in_order() -> None:
 
 
 # --- what is found ----------------------------------------------------------------------------------
+
+
+def test_a_copy_that_was_solved_is_remembered_by_its_seal_and_looked_at_each_time(tmp_path: Path) -> None:
+    path = make_book(tmp_path)
+    sign_all(path)
+    folder = issue(work_of(path), day("2026-09-05")).folder
+    output = folder.parents[2]
+    number = folder.parents[1].name
+    first = load_issued(number, "A", output)
+    assert load_issued(number, "A", output) is first
+    record = folder / "record.md"
+    text = record.read_bytes()
+    record.write_bytes(text + b"\n")
+    assert codes(lambda: load_issued(number, "A", output)) == ["issued-altered"]
+    record.write_bytes(text)
+    assert load_issued(number, "A", output) is first
+
+
+def test_a_file_that_is_solved_already_is_the_side_that_it_is_when_read(tmp_path: Path) -> None:
+    path = make_book(tmp_path)
+    work = work_of(path)
+    found, read = side_of(work.solved, path, work.output), load_side(path.name, path.parent, work.output)
+    assert (found.label, found.digest, found.tree, found.state) == (
+        read.label,
+        read.digest,
+        read.tree,
+        read.state,
+    )
+    assert found.file_name == read.file_name
+    assert found.results == read.results
 
 
 def test_a_copy_as_it_was_issued_has_no_finding(copy: Path) -> None:
