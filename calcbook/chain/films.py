@@ -381,7 +381,9 @@ class FilmScope:
                 "nothing is stated",
                 self.owner,
             )
-        return self.scope.constant(f"{self.owner}/with {need.symbol}", number)
+        # A word's number is its place in the method's own list, and another in the list of another method.
+        among = f" among {', '.join(need.one_of)}" if _words(need) else ""
+        return self.scope.constant(f"{self.owner}/with {need.symbol}{among}", number)
 
     def report_missing(self, need: Need, example: str) -> None:
         """A figure that nothing gives: said once per term."""
@@ -421,6 +423,26 @@ class FilmScope:
             self.situation.id,
             "speed",
         )
+
+    def flow_of_speed(self) -> dict[str, str]:
+        """What a stated speed makes a mass flow with (v, rho, A_c); nothing where flow area or density is not given.
+
+        Nothing is missing then: the film needs the speed alone.
+        """
+        assert self.stream is not None and self.situation is not None
+        relation = self.situation.flow_area
+        needs = {need.symbol: need for need in self.situation.needs}
+        if relation is None or not self.stream.fluid.has("density"):
+            return {}
+        if not all(symbol in needs and self._is_given(needs[symbol]) for symbol in relation.symbols):
+            return {}
+        area = self.local_step("flow area", "A_c", "flow area", relation, "flow area")
+        return {"v": self.stream.flow, "rho": self.property("density", "bulk"), "A_c": area}
+
+    def _is_given(self, need: Need) -> bool:
+        """Whether the file gives a figure that the situation needs."""
+        stated = need.symbol in self.term.with_values or need.quantity.name in self.term.with_values
+        return stated or need.quantity.name in self.dimensions or need.absent is not None
 
     def flow_of_situation(self, symbol: str) -> str:
         """The id of the stream's mass flow, or of the situation's flow area."""
@@ -496,7 +518,7 @@ class FilmScope:
         for need in self.situation.needs:
             if symbol in need.one_of:
                 return self.scope.constant(
-                    f"word {symbol} of {need.symbol}", float(need.one_of.index(symbol))
+                    f"word {symbol} of {', '.join(need.one_of)}", float(need.one_of.index(symbol))
                 )
             if need.symbol == symbol:
                 found = self.from_term(need)

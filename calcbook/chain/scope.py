@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 
@@ -62,7 +63,10 @@ class Scope:
     # -- figures ------------------------------------------------------------------------------------
 
     def constant(self, name: str, value: object, dim: Dimension = DIMENSIONLESS) -> str:
-        """A fixed figure, under a name."""
+        """A fixed figure, under a name. Raises ``ValueError`` for a name that stands for another figure."""
+        was = self.constants.get(name, value)
+        if isinstance(was, float) and not math.isnan(was) and was != value:
+            raise ValueError(f"{name} would be {value} and {was}")
         self.constants[name] = value
         self.dimensions[name] = dim
         return name

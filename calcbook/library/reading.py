@@ -688,14 +688,15 @@ def plain(node: Node | None) -> object:
 
 def choice_number(text: str, options: tuple[str, ...]) -> float:
     """The number that stands for a text: the figure itself, or the place of a word in its choice."""
-    if options and not _is_number(options[0]):
+    if options and not is_number(options[0]):
         if text in options:
             return float(options.index(text))
         raise ValueError(text)
     return float(text)
 
 
-def _is_number(text: str) -> bool:
+def is_number(text: str) -> bool:
+    """Whether a text is a figure and no word."""
     try:
         float(text)
     except ValueError:

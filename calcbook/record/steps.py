@@ -29,7 +29,7 @@ from calcbook.formulas.names import written_name
 from calcbook.library.cards import Sum
 from calcbook.library.cards import Table as CardTable
 from calcbook.library.operations import LookupOperation, RelationOperation, SolveOperation, SumOperation
-from calcbook.library.reading import vocabulary
+from calcbook.library.reading import is_number, vocabulary
 from calcbook.quantities import QuantityKind
 from calcbook.record.numbers import NOT_USED, PLAIN_DIGITS, celsius, number, plain, unit_text, value_text
 
@@ -364,7 +364,7 @@ def _cell_word(table: CardTable, symbol: str, value: float) -> str:
     column = table.columns.index(symbol)
     for cells, texts in zip(table.cells, table.texts, strict=True):
         if cells[column] == value:
-            return texts[column] if texts[column].isalpha() else ""
+            return "" if is_number(texts[column]) else texts[column]
     return ""
 
 
