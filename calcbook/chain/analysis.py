@@ -1121,6 +1121,41 @@ def criterion_figures(
     return found
 
 
+def clean_surface_criteria(
+    chain: Chain, solution: Solution, ends: tuple[EndState, ...], state: str
+) -> tuple[CriterionResult, ...]:
+    """The acceptance criteria on temperatures of the clean unit in another state than the stated one.
+
+    ``ends`` are both ends of that state, ``state`` its name, which stands in place of a case.
+    """
+    kind = vocabulary()["temperature"]
+    results = {
+        f"T {name} {CLEAN}": ResultFigures(value, kind, "")
+        for name, value in _Analysis(chain, Collector())._interfaces(solution)
+    } | surfaces_at_ends(ends)
+    found = []
+    for item in criterion_figures(chain, {SERVICE: solution}, results):
+        value, margin = (
+            float(np.ravel(figures)[0]) for figures in (results[item.criterion.result].values, item.margin)
+        )
+        if math.isfinite(value):
+            limit = value - margin * OPPOSITE[item.criterion.operator]
+            found.append(
+                CriterionResult(
+                    f"criterion {item.number}",
+                    state,
+                    item.criterion.text,
+                    value,
+                    limit,
+                    margin,
+                    bool(criterion_met(item.criterion, margin)),
+                    kind,
+                    item.criterion.source,
+                )
+            )
+    return tuple(found)
+
+
 def criterion_margin(criterion: Criterion, value: Array | float, limit: Array | float) -> Array:
     """Value less limit, in the direction that is good."""
     return (np.asarray(value) - limit) * OPPOSITE[criterion.operator]

@@ -69,6 +69,8 @@ class _Builder:
         self.collector = collector
         self.scope = Scope(calculation, collector)
         self.streams: dict[str, StreamState] = {}
+        # What stated speeds make mass flows with, for the heat balance alone.
+        self.speeds: dict[str, dict[str, str]] = {}
         self.checks: list[ChainCheck] = []
         self.early: frozenset[str] = frozenset()
         self.finned: FinnedSide | None = None
@@ -121,7 +123,8 @@ class _Builder:
         if self.collector or basis is None or elements is None:
             self._mark_unused()
             return None
-        circuit, results = Circuit(scope, elements, shape, basis, self.streams).lay_out()
+        laid_out = Circuit(scope, elements, shape, basis, self.streams, self.speeds)
+        circuit, results = laid_out.lay_out()
         if self.specified is not None:
             before = frozenset(scope.steps)
             self.checks.append(self.specified.found(results["U"]))
@@ -129,7 +132,7 @@ class _Builder:
         if has_duty:
             circuit, results = self._rated(elements, shape, basis, circuit, results)
         else:
-            self.checks += self._heat_balance(elements, results)
+            self.checks += self._heat_balance(elements, results, laid_out.streams)
         return self._finished(elements, shape, basis, circuit, results) if not self.collector else None
 
     def _rated(
@@ -155,7 +158,9 @@ class _Builder:
         added = tuple(step for name, step in self.scope.steps.items() if name not in before)
         return (*circuit, *added), {**results, **self.duty.results}
 
-    def _heat_balance(self, elements: tuple[Element, ...], results: dict[str, str]) -> list[ChainCheck]:
+    def _heat_balance(
+        self, elements: tuple[Element, ...], results: dict[str, str], streams: Mapping[str, StreamState]
+    ) -> list[ChainCheck]:
         """A caution where a stream would change its temperature by more than its stated mean can stand for, and
         where a saturated one would have to change more than its whole flow."""
         first, last = elements[0], elements[-1]
@@ -183,7 +188,7 @@ class _Builder:
                 inputs = {"dT": bound, "T_in": first.bulk, "T_out": last.bulk}
                 checks.append(_balance_check(stream, change, inputs))
             elif kind == PHASE_CHANGE:
-                checks.append(_balance_check(stream, flow, {"m": self.streams[stream].mass_flow}))
+                checks.append(_balance_check(stream, flow, {"m": streams[stream].mass_flow}))
                 checks.append(_balance_check(stream, whole, {"x_pc": bound}))
         return checks
 
@@ -962,6 +967,8 @@ class _Builder:
         if branch is not None:
             drop, reason = lay_out_pressure_drop(film)
             branch = replace(branch, pressure_drop=drop, no_pressure_drop=reason)
+        if branch is not None and stream.flow_kind == "speed" and self.duty is None:
+            self.speeds[stream.name] = film.flow_of_speed()
         self.checks += film.vapour_checks()
         for candidate in branch.candidates if branch is not None else ():
             self._card_state(
@@ -1181,7 +1188,7 @@ class _Builder:
             "range",
             f"the stated value holds for {low.source} {low.text} to {high.text}",
             "calculation file",
-            "published",
+            "as stated",
             term.place,
         )
         return (

@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from dataclasses import replace
 
 from calcbook.chain.latent import PHASE_CHANGE, changed_part
 from calcbook.chain.scope import Scope
 from calcbook.chain.surfaces import Shape
-from calcbook.chain.types import ChainStep, Element, Group, Layer, StreamState
+from calcbook.chain.types import Branch, ChainStep, Element, Group, Layer, StreamState
 from calcbook.formulas import parse_expression
 from calcbook.library import vocabulary
 
@@ -22,8 +23,10 @@ class Circuit:
         shape: Shape,
         basis: int,
         streams: Mapping[str, StreamState],
+        speeds: Mapping[str, dict[str, str]],
     ):
-        self.streams = streams
+        self.streams = dict(streams)
+        self.speeds = speeds
         self.scope = scope
         self.elements = elements
         self.shape = shape
@@ -131,13 +134,25 @@ class Circuit:
 
         It stands beside the stated mean temperature, which it must not contradict, and beside the stated flow.
         """
+        for name, inputs in self.speeds.items():
+            if inputs:
+                flow = self._step(
+                    f"m {name}",
+                    "m",
+                    f"mass flow of {name} at its speed",
+                    "v*rho*A_c",
+                    inputs,
+                    "speed and flow area",
+                    "mass flow",
+                )
+                self.streams[name] = replace(self.streams[name], mass_flow=flow)
         for group in (self.elements[0], self.elements[-1]):
             assert isinstance(group, Group)
             for branch in group.branches:
                 stream = self.streams.get(branch.stream)
                 if stream is None or not stream.mass_flow:
                     continue
-                if stream.is_saturated:
+                if _changes_phase(stream, branch):
                     self.results[f"{PHASE_CHANGE} {branch.stream}"] = changed_part(
                         self.scope, stream, self.results["heat flow"], "circuit"
                     )
@@ -264,6 +279,16 @@ class Circuit:
         return self.scope.relation_step(
             f"circuit/{key}", symbol, title, "circuit", parse_expression(text), inputs, basis, kind
         )
+
+
+def _changes_phase(stream: StreamState, branch: Branch) -> bool:
+    """Whether heat changes the phase of a stream, and not its temperature.
+
+    A stream without a pressure stands on its saturation line only because nothing else is known of it: there the
+    situation says what it does.
+    """
+    in_situation = branch.situation is not None and bool(branch.situation.changes_phase)
+    return stream.is_saturated and (in_situation or bool(stream.pressure))
 
 
 def branch_coefficient(group: Group, branch: str) -> str:

@@ -6,7 +6,11 @@ from collections.abc import Mapping
 from typing import TYPE_CHECKING, NamedTuple
 
 if TYPE_CHECKING:
-    from calcbook.chain.outcome import CheckResult
+    from calcbook.chain.outcome import CheckResult, CriterionResult
+
+
+# The unit at the inlets of the duty as it is in service, beside the clean one.
+WITH_ALLOWANCES = "with the allowances"
 
 
 class LedgerRow(NamedTuple):
@@ -61,7 +65,8 @@ class DayOne(NamedTuple):
     """The clean unit at the inlets of the duty: as it runs, and turned down until it gives the duty.
 
     ``service`` is the unit with its allowances. ``turned_down`` is None with the reason in ``no_turn_down``.
-    ``checks`` are phases at the wall and figures outside their bands, in the state that ``condition`` names.
+    ``checks`` are phases at the wall and figures outside their bands, in the state that ``condition`` names;
+    ``criteria`` are those of the file on temperatures of the clean unit, in the state that their case names.
     """
 
     service: UnitState
@@ -69,6 +74,7 @@ class DayOne(NamedTuple):
     turned_down: UnitState | None
     no_turn_down: str
     checks: tuple[CheckResult, ...]
+    criteria: tuple[CriterionResult, ...]
 
     @property
     def hotter(self) -> float:

@@ -8,18 +8,20 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping
 from dataclasses import replace
+from typing import NamedTuple
 
 import numpy as np
 
+from calcbook.chain.analysis import clean_surface_criteria
 from calcbook.chain.build import build
 from calcbook.chain.checks import evaluate_check
 from calcbook.chain.completing import completed
 from calcbook.chain.duty import OWNER as DUTY
 from calcbook.chain.ends import closed_ends, end_checks, end_states
 from calcbook.chain.findings import wall_checks
-from calcbook.chain.outcome import CheckResult, Solved
+from calcbook.chain.outcome import CheckResult, CriterionResult, Solved
 from calcbook.chain.plausible import band_checks
-from calcbook.chain.rating_outcome import DayOne, SideState, UnitState
+from calcbook.chain.rating_outcome import WITH_ALLOWANCES, DayOne, SideState, UnitState
 from calcbook.chain.solve import Solution, chosen, solve
 from calcbook.chain.types import CLEAN, SERVICE, Branch, Chain, Group
 from calcbook.chain.variants import with_figures
@@ -30,6 +32,16 @@ Array = np.ndarray
 SMALLEST_PART = 0.02
 POINTS = 41
 ROUNDS = 6
+
+
+class _Judged(NamedTuple):
+    """What a state of the clean unit leaves, and the criteria on its temperatures."""
+
+    checks: tuple[CheckResult, ...] = ()
+    criteria: tuple[CriterionResult, ...] = ()
+
+
+NOTHING = _Judged()
 
 
 def day_one(solved: Solved) -> DayOne | None:
@@ -45,20 +57,23 @@ def day_one(solved: Solved) -> DayOne | None:
     )
     states = {SERVICE: (chain, SERVICE), CLEAN: (clean_chain, CLEAN)}
     solutions = {name: _solution(one, inputs, condition) for name, (one, condition) in states.items()}
-    if any(solution is None for solution in solutions.values()):
+    clean, in_service = solutions[CLEAN], solutions[SERVICE]
+    if clean is None or in_service is None:
         return None
-    clean = solutions[CLEAN]
-    assert clean is not None and solutions[SERVICE] is not None
-    turned_down, reason, checks = _turned_down(solved)
-    every = [*_checks(clean_chain, completed(clean_chain, inputs), clean, "clean"), *checks]
-    service_state = _state(chain, solutions[SERVICE])
+    turned_down, reason, judged = _turned_down(solved)
+    with_allowances = tuple(
+        check._replace(condition=WITH_ALLOWANCES) for check in _limits_of_duty(chain, in_service)
+    )
+    as_it_runs = _judged(clean_chain, completed(clean_chain, inputs), clean, "clean")
+    service_state = _state(chain, in_service)
     clean_state = _state(clean_chain, clean)
     return DayOne(
         service_state,
         clean_state,
         turned_down,
         reason,
-        tuple(every),
+        with_allowances + as_it_runs.checks + judged.checks,
+        as_it_runs.criteria + judged.criteria,
     )
 
 
@@ -90,7 +105,7 @@ def _solution(chain: Chain, inputs: Mapping[str, Array], condition: str) -> Solu
 # --- turned down --------------------------------------------------------------------------------------
 
 
-def _turned_down(solved: Solved) -> tuple[UnitState | None, str, list[CheckResult]]:
+def _turned_down(solved: Solved) -> tuple[UnitState | None, str, _Judged]:
     """The clean unit with its cold flow turned down until it gives the duty; or why there is none.
 
     The hot ends stay as stated and the cold outlet follows the flow; the flow is found where the margin of
@@ -101,35 +116,39 @@ def _turned_down(solved: Solved) -> tuple[UnitState | None, str, list[CheckResul
     assert duty is not None
     flow = chain.streams[duty.cold.stream].mass_flow
     if "C cold" not in table or not flow:
-        return None, "the cold stream has no mass flow that could be turned down", []
+        return None, "the cold stream has no mass flow that could be turned down", NOTHING
     if duty.hot.outlet is None and duty.hot.inlet is not None:
-        return None, "the outlet of the hot stream is not stated", []
+        return None, "the outlet of the hot stream is not stated", NOTHING
     opened = open_chain(chain, "cold")
     if opened is None or "duty" not in opened.results:
-        return None, "the duty does not follow from the hot stream alone", []
+        return None, "the duty does not follow from the hot stream alone", NOTHING
     fixed = _stated_without_scale(solved, duty.cold.stream)
     if fixed:
         return (
             None,
             f"the coefficient of {fixed} is stated, and nothing says how it follows the flow",
-            [],
+            NOTHING,
         )
     stated = solved.base.solutions[SERVICE].number(flow)
     low, high = SMALLEST_PART * stated, stated
     inputs = opened.case_inputs("")
     margin = _margins(opened, inputs, flow, np.array([high]))
     if not margin[0] > 0.0:
-        return None, "the clean unit does not carry the duty with any flow to spare", []
+        return None, "the clean unit does not carry the duty with any flow to spare", NOTHING
     for _ in range(ROUNDS):
         points = np.linspace(low, high, POINTS)
         below = np.flatnonzero(~(_margins(opened, inputs, flow, points) > 0.0))
         if not len(below):
-            return None, f"the clean unit carries the duty at {SMALLEST_PART:.0%} of the cold flow still", []
+            return (
+                None,
+                f"the clean unit carries the duty at {SMALLEST_PART:.0%} of the cold flow still",
+                NOTHING,
+            )
         low, high = points[below[-1]], points[below[-1] + 1]
     one, given = with_figures(opened, inputs, {flow: np.asarray(high)})
     given = completed(one, given)
     solution = solve(one, given, CLEAN)
-    return _state(one, solution), "", _checks(one, given, solution, "turned down")
+    return _state(one, solution), "", _judged(one, given, solution, "turned down")
 
 
 def _stated_without_scale(solved: Solved, stream: str) -> str:
@@ -188,20 +207,26 @@ def _ranges(chain: Chain, solution: Solution) -> list[CheckResult]:
     ]
 
 
-def _checks(chain: Chain, inputs: Mapping[str, Array], solution: Solution, state: str) -> list[CheckResult]:
+def _judged(chain: Chain, inputs: Mapping[str, Array], solution: Solution, state: str) -> _Judged:
     """Phases at the wall, at the means and at both ends, what the duty itself limits, and figures outside their
-    bands, of the clean unit."""
-    phases = [
-        *wall_checks(chain, "", solution),
-        *end_checks(closed_ends(end_states(chain, inputs, {CLEAN: solution})), ""),
-    ]
+    bands, of the clean unit; and the criteria on its temperatures."""
+    ends = closed_ends(end_states(chain, inputs, {CLEAN: solution}))
+    phases = [*wall_checks(chain, "", solution), *end_checks(ends, "")]
     found = [check for check in phases if check.state != "within"]
     found += [check for check in _ranges(chain, solution) if check.state in ("outside", "not evaluable")]
-    found += [
+    found += _limits_of_duty(chain, solution)
+    found += band_checks(chain, "", solution)
+    return _Judged(
+        tuple(check._replace(condition=state) for check in found),
+        clean_surface_criteria(chain, solution, ends, state),
+    )
+
+
+def _limits_of_duty(chain: Chain, solution: Solution) -> list[CheckResult]:
+    """What the duty itself limits and does not hold: the ends, the heat that a saturated stream has."""
+    found = [
         evaluate_check(check, solution, "", chain.dimensions)
         for check in chain.checks
         if check.owner == DUTY and check.limit.level == "range"
     ]
-    found = [check for check in found if check.state != "within"]
-    found += band_checks(chain, "", solution)
-    return [check._replace(condition=state) for check in found]
+    return [check for check in found if check.state != "within"]

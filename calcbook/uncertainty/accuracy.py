@@ -1,7 +1,8 @@
 """The accuracy that a card states, as the distribution of a factor on its coefficient.
 
 The rules are those of the method notes: a mean deviation, a share of the data within a band, most data within
-a band, or a band alone, which is then taken as a bound. What says none of these gives no figure.
+a band, or a band alone, which is then taken as a bound. What says none of these gives no figure, and neither does
+the deviation of a fit from calculated figures.
 """
 
 from __future__ import annotations
@@ -19,6 +20,8 @@ MEAN = re.compile(r"([0-9]+(?:\.[0-9]+)?) % mean")
 SHARE = re.compile(r"([0-9]+(?:\.[0-9]+)?) % of ")
 MOST = "most data"
 MOST_SHARE = 0.95
+# The standing of an accuracy that was found against calculated figures: an exact solution at constant properties, say.
+OF_A_FIT = "independent numerics"
 
 
 @dataclass(frozen=True, slots=True)
@@ -34,6 +37,8 @@ def factor_from(accuracy: Accuracy | None) -> Factor | str:
     if accuracy is None:
         return "its card states no accuracy"
     stated = f"within {accuracy.within}, {accuracy.coverage}"
+    if accuracy.standing == OF_A_FIT:
+        return f"its accuracy ({stated}) is that of its fit to calculated figures, not of a real flow"
     mean = MEAN.fullmatch(accuracy.within)
     if mean is not None:
         deviation = float(mean[1]) / 100.0

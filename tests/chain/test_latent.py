@@ -128,3 +128,27 @@ def test_day_one_says_when_the_clean_unit_wants_more_steam_than_there_is(tmp_pat
     assert not result.open_items
     found = {check.id: check.state for check in result.rating.day_one.checks}
     assert found["duty / heat balance / phase change"] == "outside"
+
+
+def test_what_the_installed_area_reaches_is_held_against_the_steam(tmp_path: Path) -> None:
+    """The area reaches more than the duty: with a flow for the duty alone, the brief and day one say so."""
+    solved(tmp_path, "0.5", duty=True)
+    path = tmp_path / "trial.yaml"
+    text = path.read_text(encoding="utf-8")
+    deposit = (
+        "  - {name: scale, kind: fouling, resistance: {value: 0.00005 m^2 K/W, source: test}, on: inside}\n"
+    )
+    path.write_text(text.replace("  - {name: wall,", deposit + "  - {name: wall,"), encoding="utf-8")
+    result = solve_file(path, path.name)
+    part = result.rating.day_one.service.heat / (0.5 * latent_heat())
+    assert part > 1.0 > result.base.results["phase_change steam service"].value
+    found = [check for check in result.rating.day_one.checks if check.condition == "with the allowances"]
+    assert [check.id for check in found] == ["duty / heat balance / phase change"]
+    # Figures of a check are printed with five digits.
+    assert float(found[0].figure.split("=")[1]) == pytest.approx(part, rel=2e-4)
+    record = record_text(result)
+    row = next(
+        line for line in record.splitlines() if line.startswith("| Heat that the installed area reaches")
+    )
+    assert "phase change" in row and "outside" in row
+    assert "phase change, day one, with the allowances" in record.partition("## 14.")[2]

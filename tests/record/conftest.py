@@ -44,6 +44,11 @@ def water_cooler() -> Solved:
 
 
 @pytest.fixture
+def oven_wall() -> Solved:
+    return solved_of("oven_wall")
+
+
+@pytest.fixture
 def water_cooler_text() -> str:
     return text_of("water_cooler")
 

@@ -244,13 +244,19 @@ def test_the_fixed_cautions_stand_in_every_record(text: str) -> None:
     assert cautions.count("\n> ") == 10
 
 
-def test_a_hot_surface_is_told_where_the_site_has_a_limit(water_cooler: Solved) -> None:
-    calculation = water_cooler.chain.calculation
-    temperature = water_cooler.chain.calculation.givens["T_cold"].value
-    settings = replace(calculation.settings, surface_temperature=temperature)
-    chain = replace(water_cooler.chain, calculation=replace(calculation, settings=settings))
-    text = record_text(replace(water_cooler, chain=chain))
-    assert "service: the outside surface is at 40.31 °C, above the site limit of 31 degC" in section(text, 14)
+def test_a_hot_surface_is_told_where_the_site_has_a_limit_and_a_hand_can_reach_it(
+    oven_wall: Solved, water_cooler: Solved
+) -> None:
+    for solved, symbol, words in (
+        (oven_wall, "T_out", "service: the outside surface is at 27.11 °C, above the site limit of 20 degC"),
+        # 40.31 degC, but in the water of a shell: its coefficient is larger than air can give.
+        (water_cooler, "T_cold", ""),
+    ):
+        calculation = solved.chain.calculation
+        settings = replace(calculation.settings, surface_temperature=calculation.givens[symbol].value)
+        chain = replace(solved.chain, calculation=replace(calculation, settings=settings))
+        cautions = section(record_text(replace(solved, chain=chain)), 14)
+        assert words in cautions and ("above the site limit" in cautions) == bool(words)
 
 
 def test_the_limit_of_excess_surface_is_the_books(water_cooler: Solved) -> None:

@@ -95,3 +95,10 @@ def test_every_card_gives_a_factor_or_a_reason() -> None:
         else:
             assert 0.0 < found.distribution.standard < 1.0, name
     assert len(reasons) < len(library.names("methods")) / 2
+
+
+def test_the_deviation_of_a_fit_is_no_accuracy_of_a_prediction() -> None:
+    """A fit within 1 % of an exact solution says nothing of a flow whose properties vary."""
+    fit = Accuracy("1 %", "exact solution", "somebody", "independent numerics")
+    assert "of its fit to calculated figures" in str(factor_from(fit))
+    assert isinstance(factor_from(Library().method("gnielinski-laminar-t").accuracy), str)

@@ -16,9 +16,9 @@ from calcbook.record.numbers import (
     unit_text,
 )
 from calcbook.record.page import Page, case_name, counted
+from calcbook.record.sections.criteria import CRITERION_COLUMNS, criterion_row
 from calcbook.record.sections.duty import day_one_blocks
 from calcbook.record.sections.growth import time_blocks
-from calcbook.record.sections.head import criterion_row
 from calcbook.record.sections.uncertainty import uncertainty
 from calcbook.record.sections.validity import verdict
 
@@ -104,7 +104,7 @@ def _case(case: CaseOutcome, page: Page) -> list[Block]:
     if case.criteria:
         blocks.append(
             Table(
-                ("Criterion", "Case", "Stated", "Value", "Limit", "Margin", "Verdict", "Source"),
+                CRITERION_COLUMNS,
                 tuple(criterion_row(item, page) for item in case.criteria),
             )
         )

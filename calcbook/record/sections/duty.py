@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 
 from calcbook.chain.allowance import fouling_figures
-from calcbook.chain.rating_outcome import DayOne, Parts, Rating, UnitState
+from calcbook.chain.rating_outcome import WITH_ALLOWANCES, DayOne, Parts, Rating, UnitState
 from calcbook.chain.types import Layer
 from calcbook.library import vocabulary
 from calcbook.quantities import in_unit
@@ -21,6 +21,7 @@ from calcbook.record.numbers import (
     unit_text,
 )
 from calcbook.record.page import Page
+from calcbook.record.sections.criteria import CRITERION_COLUMNS, criterion_row
 from calcbook.record.sections.validity import verdict
 
 # A surface this much hotter than in service is told, K: common practice.
@@ -38,7 +39,7 @@ def brief_rows(page: Page) -> list[tuple[str, str, str]]:
         (
             "heat_reached_service",
             "Heat that the installed area reaches in service",
-            "effectiveness, from the same inlets",
+            _reached_basis(page),
         ),
     ):
         result = page.result(name)
@@ -54,6 +55,14 @@ def brief_rows(page: Page) -> list[tuple[str, str, str]]:
     if margin is not None:
         rows.append(("Margin of area over the duty", percent(margin.value), "A_installed/A_service − 1"))
     return rows
+
+
+def _reached_basis(page: Page) -> str:
+    """What the heat that is reached rests on, and whether a saturated stream has that much."""
+    day = page.solved.rating.day_one if page.solved.rating is not None else None
+    words = "effectiveness, from the same inlets"
+    left = [check for check in (day.checks if day is not None else ()) if check.condition == WITH_ALLOWANCES]
+    return f"{words}; {left[0].id}: {left[0].figure}, limit {left[0].limit}, outside" if left else words
 
 
 def _duty_basis(page: Page) -> str:
@@ -245,7 +254,7 @@ def day_one_blocks(page: Page) -> list[Block]:
     day = page.solved.rating.day_one if page.solved.rating is not None else None
     if day is None:
         return []
-    states = {"with the allowances": day.service, "clean": day.clean}
+    states = {WITH_ALLOWANCES: day.service, "clean": day.clean}
     if day.turned_down is not None:
         states["clean, turned down to the stated hot outlet"] = day.turned_down
     blocks: list[Block] = [
@@ -267,7 +276,7 @@ def day_one_blocks(page: Page) -> list[Block]:
             (check.id, check.condition, check.figure, check.limit, verdict(check)) for check in day.checks
         )
         blocks += [
-            Paragraph("Limits, ranges and usual windows that the clean unit leaves:"),
+            Paragraph("Limits, ranges and usual windows that are left in these states:"),
             Table(("Check", "State", "Figure", "Limit", "Verdict"), rows),
         ]
     else:
@@ -277,6 +286,15 @@ def day_one_blocks(page: Page) -> list[Block]:
                 " usual window."
             )
         )
+    if day.criteria:
+        columns = tuple("State" if name == "Case" else name for name in CRITERION_COLUMNS)
+        blocks += [
+            Paragraph(
+                "The acceptance criteria on temperatures of the clean unit, which section 2 judges at the stated ends,"
+                " in these states:"
+            ),
+            Table(columns, tuple(criterion_row(item, page) for item in day.criteria)),
+        ]
     return blocks
 
 

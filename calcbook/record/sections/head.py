@@ -3,25 +3,22 @@
 from __future__ import annotations
 
 from calcbook.chain.analysis import is_found_later
-from calcbook.chain.outcome import CaseOutcome, CriterionResult
+from calcbook.chain.outcome import CaseOutcome
 from calcbook.chain.pressure import drops
 from calcbook.record.blocks import Block, Heading, Paragraph, Quote, Table
 from calcbook.record.numbers import (
     CONCLUSION_DIGITS,
     PLAIN_DIGITS,
-    apart,
     in_report_unit,
     number,
     percent,
-    report_unit,
-    unit_text,
-    with_unit,
 )
 from calcbook.record.page import Page, case_name, counted
+from calcbook.record.sections.criteria import CRITERION_COLUMNS, criterion_row
 from calcbook.record.sections.duty import brief_rows
 from calcbook.record.sections.growth import time_brief_rows
 from calcbook.record.sections.survey import survey_brief_rows
-from calcbook.record.sections.uncertainty import certainty_words, how_sure
+from calcbook.record.sections.uncertainty import how_sure
 
 
 def confirmation(page: Page) -> str:
@@ -126,18 +123,24 @@ def _pressure_rows(page: Page) -> list[tuple[str, str, str]]:
             result = page.result(f"dp {branch.stream}_{condition}")
             if result is not None:
                 value = in_report_unit(result.value, result.kind, page.calculation.report, CONCLUSION_DIGITS)
-                basis = f"{drop.total.method.id}, at {group.name}{_deposit_words(page, condition)}"
+                basis = (
+                    f"{drop.total.method.id}, at {group.name}{_deposit_words(page, group.side, condition)}"
+                )
                 rows.append((f"Pressure drop of {branch.stream}, {words}", value, basis))
     return rows
 
 
-def _deposit_words(page: Page, condition: str) -> str:
-    """What a pressure drop in service leaves out, where a deposit does not narrow the flow."""
-    fouled = any(row.kind == "fouling" for row in page.base.terms[condition])
-    narrows = any(term.deposit is not None and term.deposit.narrows for term in page.calculation.resistances)
-    if condition != "service" or not fouled:
+def _deposit_words(page: Page, side: str, condition: str) -> str:
+    """What a pressure drop in service leaves out of the deposits on its side of the wall."""
+    terms = page.calculation.resistances
+    walls = [place for place, term in enumerate(terms) if term.kind == "wall"]
+    if condition != "service" or not walls:
         return ""
-    if narrows:
+    near = terms[: walls[0]] if side == "inside" else terms[walls[-1] + 1 :]
+    deposits = [term.deposit for term in near if term.kind == "fouling"]
+    if not deposits:
+        return ""
+    if any(deposit is not None and deposit.narrows for deposit in deposits):
         return "; the deposit narrows the flow, its roughness is not counted"
     return "; thickness and roughness of a deposit are not counted"
 
@@ -161,39 +164,7 @@ def _criteria(page: Page) -> list[Block]:
     if not items:
         return [Paragraph("No acceptance criterion is stated: the result is for information.")]
     rows = tuple(criterion_row(item, page) for item in items)
-    return [Table(("Criterion", "Case", "Stated", "Value", "Limit", "Margin", "Verdict", "Source"), rows)]
-
-
-def criterion_row(item: CriterionResult, page: Page) -> tuple[str, ...]:
-    """A criterion with the figures that show its verdict."""
-    unit = report_unit(item.kind, page.calculation.report)
-    point = item.kind.scale == "point"
-    shown = unit_text(unit)
-    value, limit = apart(item.limit if item.words else item.value, item.limit, unit, point, PLAIN_DIGITS)
-    verdict = "criterion met" if item.met else "criterion not met"
-    if not item.case:
-        verdict += certainty_words(page.solved.uncertainty, item)
-    return (
-        item.id,
-        case_name(item.case),
-        item.that,
-        item.words or with_unit(value, shown),
-        with_unit(limit, shown),
-        "not known" if item.words else _margin(item, page),
-        verdict,
-        item.source or "no source",
-    )
-
-
-def _margin(item: CriterionResult, page: Page) -> str:
-    """The margin in the unit of the report; that of a temperature is a difference."""
-    if item.kind.scale == "point":
-        return with_unit(number(item.margin, CONCLUSION_DIGITS), unit_text(item.kind.unit))
-    margin = in_report_unit(item.margin, item.kind, page.calculation.report, CONCLUSION_DIGITS)
-    relative = ""
-    if item.limit and item.kind.unit != "1":
-        relative = f"; {percent(item.margin / abs(item.limit))} of the limit"
-    return margin + relative
+    return [Table(CRITERION_COLUMNS, rows)]
 
 
 def _governing(page: Page) -> list[Block]:

@@ -4,12 +4,13 @@ from __future__ import annotations
 
 from collections.abc import Callable
 
-from calcbook.chain.types import CONDITIONS
+from calcbook.chain.outside import stands_in_the_open
+from calcbook.chain.types import CONDITIONS, SERVICE
 from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Quote, Table
 from calcbook.record.numbers import celsius, in_report_unit, percent
 from calcbook.record.page import HOUSE_METHOD, Page, case_name, counted
 from calcbook.record.sections.head import confirmation
-from calcbook.record.sections.validity import SMALLEST_RESIDUAL, residual
+from calcbook.record.sections.validity import SMALLEST_RESIDUAL, residual, verdict
 
 FOR_CHECKER = "for the checker:"
 EXCESS_LIMIT = 0.5  # common practice: above it the clean unit behaves as another machine
@@ -266,6 +267,7 @@ def _triggered(page: Page) -> list[str]:
         *_trial(page),
         *_house(page),
         *_criterion(page),
+        *_day_one(page),
     ]
 
 
@@ -298,9 +300,8 @@ def _hot_surface(page: Page) -> list[str]:
 
 
 def can_be_touched(page: Page) -> bool:
-    """Whether the outside stands free: a flow that is led past it, or a vapour, is inside something itself."""
-    situations = [branch.situation for branch in page.chain.outer.branches]
-    return any(situation is None or situation.flow == "free" for situation in situations)
+    """Whether the outside stands in the open in the base case."""
+    return stands_in_the_open(page.chain, page.base.solutions[SERVICE])
 
 
 def _wall(page: Page) -> list[str]:
@@ -390,5 +391,19 @@ def _criterion(page: Page) -> list[str]:
         f"{item.id} is not met in case {case_name(item.case)}: {item.that}."
         for case in page.solved.cases
         for item in case.criteria
+        if not item.met
+    ]
+
+
+def _day_one(page: Page) -> list[str]:
+    """What the unit leaves at the inlets of the duty, and the criteria that it does not meet there."""
+    day = page.solved.rating.day_one if page.solved.rating is not None else None
+    left = [
+        f"{check.id}, day one, {check.condition}: {check.figure}, limit {check.limit}: {verdict(check)}."
+        for check in (day.checks if day is not None else ())
+    ]
+    return left + [
+        f"{item.id} is not met on day one, {item.case}: {item.that}."
+        for item in (day.criteria if day is not None else ())
         if not item.met
     ]

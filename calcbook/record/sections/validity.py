@@ -108,6 +108,7 @@ def verdict(check: CheckResult, house: bool = False) -> str:
 def _standing(standing: str) -> str:
     return {
         "common practice": "common practice",
+        "as stated": "range stated with the value",
         "from memory": "limit from memory",
         "independent library": "limit from an independent library",
         "independent numerics": "limit from independent numerics",
