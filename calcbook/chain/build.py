@@ -153,6 +153,8 @@ class _Builder:
                 "the geometry gives the area of 1 m only",
                 expected="length: … in the geometry",
             )
+        if "tube passes" in shape.dimensions:
+            self.duty.holds_passes(shape.dimensions["tube passes"])
         self.duty.rating(results, shape.surfaces[basis].area, elements)
         self.checks += self.duty.checks
         added = tuple(step for name, step in self.scope.steps.items() if name not in before)

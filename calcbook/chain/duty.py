@@ -42,6 +42,8 @@ from calcbook.library.cards import Limit, Need
 
 Array = np.ndarray
 OWNER, AGAIN = "duty", "duty again"
+# The check of the passes of the geometry: the same in every state of the unit.
+PASSES = "arrangement / tube passes"
 SIDES = ("hot", "cold")
 # Balances of plant data close within these parts of the duty; beyond the first the flows or temperatures are
 # not those of one state, beyond the second they cannot be rated.
@@ -193,6 +195,16 @@ class DutyLayout:
             "conductance",
         )
         self._flow_check(name)
+
+    def holds_passes(self, passes: str) -> None:
+        """A caution where the passes of the geometry are not those that the arrangement has."""
+        if self.isothermal:
+            return
+        is_multiple = self.duty.arrangement == "shell and tube"
+        that = "N_p >= 2" if is_multiple else "N_p <= 1"
+        has = "an even number of tube passes" if is_multiple else "one pass of each stream"
+        because = f"the mean temperature difference of this arrangement is that of {has}"
+        self._check(PASSES, that, "caution", because, {"N_p": passes})
 
     def _flow_check(self, name: str) -> None:
         self._check(f"ends / {name} flow", SOME_FLOW, "stop", NO_FLOW, {"m": self.states[name].mass_flow})

@@ -19,6 +19,7 @@ from calcbook.chain.types import (
     CONDITIONS,
     SERVICE,
     Branch,
+    Candidate,
     Chain,
     ChainStep,
     Group,
@@ -592,9 +593,36 @@ def ending_properties(chain: Chain, solution: Solution) -> Iterator[tuple[Branch
 # --- what the runner decided ------------------------------------------------------------------------
 
 
+def _of_other_methods(chain: Chain, solutions: Mapping[str, Solution]) -> set[str]:
+    """Ids of what was taken for methods of films that neither condition chose."""
+    unused: set[str] = set()
+    for group in (chain.inner, chain.outer):
+        for branch in group.branches:
+            used = {chosen(branch, solution).method.id for solution in solutions.values()}
+            drop = branch.pressure_drop
+            acting = [item for item in branch.candidates if item.method.id in used]
+            acting += [*drop.laws, drop.total] if drop is not None else []
+            kept = {symbol for item in acting for symbol in _needed(item)}
+            if branch.situation is not None:
+                kept |= {need.symbol for need in branch.situation.needs}
+            asked = {
+                symbol for item in (*branch.candidates, *branch.alternatives) for symbol in _needed(item)
+            }
+            unused |= {f"{branch.name}/{symbol}" for symbol in asked - kept}
+    return unused
+
+
+def _needed(candidate: Candidate) -> Iterator[str]:
+    """The symbols that a method and the cards it uses take from outside."""
+    yield from (need.symbol for card in candidate.cards for need in card.needs)
+
+
 def assumptions_of(chain: Chain, solutions: Mapping[str, Solution]) -> tuple[RunnerAssumption, ...]:
     """The runner's decisions: those of the build, and those that only a solution shows."""
-    found: dict[str, RunnerAssumption] = {item.id: item for item in chain.assumptions}
+    unused = _of_other_methods(chain, solutions)
+    found: dict[str, RunnerAssumption] = {
+        item.id: item for item in chain.assumptions if item.id not in unused
+    }
 
     def say(name: str, text: str, decided_by: str, acts_on: str) -> None:
         found.setdefault(name, RunnerAssumption(name, text, decided_by, acts_on))

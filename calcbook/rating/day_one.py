@@ -17,6 +17,7 @@ from calcbook.chain.build import build
 from calcbook.chain.checks import evaluate_check
 from calcbook.chain.completing import completed
 from calcbook.chain.duty import OWNER as DUTY
+from calcbook.chain.duty import PASSES
 from calcbook.chain.ends import closed_ends, end_checks, end_states
 from calcbook.chain.findings import wall_checks
 from calcbook.chain.outcome import CheckResult, CriterionResult, Solved
@@ -227,6 +228,6 @@ def _limits_of_duty(chain: Chain, solution: Solution) -> list[CheckResult]:
     found = [
         evaluate_check(check, solution, "", chain.dimensions)
         for check in chain.checks
-        if check.owner == DUTY and check.limit.level == "range"
+        if check.owner == DUTY and check.limit.level in ("range", "caution") and not check.id.endswith(PASSES)
     ]
     return [check for check in found if check.state != "within"]

@@ -366,3 +366,34 @@ def test_a_specified_fouling_is_met_though_films_move_with_it(
         figure(answer, f"R {name} service") for name in ("tube-side deposit", "shell-side deposit")
     )
     assert inner / outer == pytest.approx(40 / 60, rel=1e-12)
+
+
+@pytest.mark.parametrize(
+    ("arrangement", "passes", "state"),
+    [
+        ("counterflow", 1, "within"),
+        ("counterflow", 2, "outside"),
+        ("crossflow both unmixed", 4, "outside"),
+        ("shell and tube", 1, "outside"),
+        ("shell and tube", 2, "within"),
+    ],
+)
+def test_passes_that_the_arrangement_does_not_have_are_a_caution(
+    tmp_path: Path, arrangement: str, passes: int, state: str
+) -> None:
+    """Counterflow and crossflow are of one pass of each stream, a shell has an even number of tube passes (any of the
+    books on the mean temperature difference; common practice)."""
+    solved(tmp_path, arrangement=arrangement)
+    path = tmp_path / "rt-1.yaml"
+    text = path.read_text(encoding="utf-8")
+    path.write_text(
+        text.replace(
+            "length: L}",
+            f"length: L, tubes: {{value: 12, source: s}}, passes: {{value: {passes}, source: s}}}}",
+        ),
+        encoding="utf-8",
+    )
+    checks = [
+        check for check in solve_file(path).base.checks if check.id == "duty / arrangement / tube passes"
+    ]
+    assert {(check.state, check.level) for check in checks} == {(state, "caution")}

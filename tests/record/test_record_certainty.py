@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from functools import cache
 from pathlib import Path
 
@@ -93,3 +94,22 @@ def test_what_its_own_tolerance_can_flip_stands_first() -> None:
     flips = solve_file(CALCS / "wc-105.yaml").flips.of_kind("criterion")
     reached = [flip.is_within_tolerance for flip in flips]
     assert reached == sorted(reached, reverse=True) and reached[0]
+
+
+def test_only_what_the_methods_in_use_take_is_assumed() -> None:
+    """WC-105 flows turbulent: the profile and the boundary of the laminar and the transition law are not its own. The
+    oil of OC-201 is laminar and takes a developed profile."""
+    turbulent = [line for line in lines("wc-105") if line.startswith("| tube-side film/")]
+    assert turbulent and not any("/profile |" in line or "/boundary |" in line for line in turbulent)
+    assert any(line.startswith("| oil film/profile |") for line in lines("oc-201"))
+
+
+def test_a_margin_below_zero_is_taken_from_the_stacked_ones() -> None:
+    """The stacked margins of WC-105 less what is below zero are the installed area over the clean one, less one."""
+    line = next(line for line in lines("wc-105") if line.startswith("Stacked margins:"))
+    together, less = (float(word[:-2]) for word in re.findall(r"[0-9.]+ %", line))
+    solved = solve_file(CALCS / "wc-105.yaml", for_record=False)
+    installed, clean = (solved.base.results[f"area_{name}"].value for name in ("installed", "clean"))
+    assert together - less == pytest.approx(
+        100.0 * (installed / clean - 1.0), abs=0.11
+    )  # two roundings to 0.1 %

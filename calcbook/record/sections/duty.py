@@ -107,10 +107,12 @@ def _ledger(page: Page, rating: Rating) -> list[Block]:
     if stacked:
         total = sum(row.area for row in stacked)
         needed = rating.ledger[0].area
+        less = [row for row in rating.ledger if row.is_margin and row.area < 0.0]
+        taken = "".join(f", less {percent(-row.area / needed)} for {row.name}" for row in less)
         blocks.append(
             Paragraph(
                 f"Stacked margins: {', '.join(row.name for row in stacked)}; together {percent(total / needed)} of the"
-                " area that the duty needs clean."
+                f" area that the duty needs clean{taken}."
             )
         )
     return blocks
@@ -135,12 +137,14 @@ def _allowances(page: Page) -> list[Block]:
     if not rows:
         return []
     unit = unit_text(report_unit(vocabulary()["area resistance"], page.calculation.report))
+    narrows = any(term.deposit is not None and term.deposit.narrows for term in page.calculation.resistances)
     return [
         Heading(3, "Largest allowances"),
         Paragraph(
             "The largest resistance of one fouling figure, on its own surface, with which the installed area still"
             " carries the duty; the others stay as stated. The circuit is closed again with it: films and walls follow"
             " their temperatures, so it is not just what 1/U_req leaves beside the resistances above."
+            + (" The bore stays as the stated deposits narrow it." if narrows else "")
         ),
         Table(("Fouling term", "On", f"Stated, {unit}", f"Largest, {unit}"), rows),
     ]
