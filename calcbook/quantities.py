@@ -202,7 +202,7 @@ class QuantityKind(NamedTuple):
 
     ``scale`` is "point" for a temperature (degC and degF are points of a scale), else "".
     ``reading`` is "absolute" or "gauge" for a pressure, else "". ``least`` and ``most`` are what it cannot pass by
-    its definition, as the vocabulary writes them, or "".
+    its definition, as the vocabulary writes them, or "". ``whole`` says that it counts things that are not parted.
     """
 
     name: str
@@ -217,6 +217,7 @@ class QuantityKind(NamedTuple):
     sign: Sign = "any"
     least: str = ""
     most: str = ""
+    whole: bool = False
 
     @property
     def bounds(self) -> tuple[float, float]:
@@ -227,7 +228,8 @@ class QuantityKind(NamedTuple):
         """Whether the quantity can have an SI value, by its sign and its definition."""
         least, most = self.bounds
         above = value > 0.0 if self.sign == "positive" else value >= 0.0
-        return (above or self.sign == "any" or self.reading == "gauge") and least <= value <= most
+        is_there = least <= value <= most and (not self.whole or float(value).is_integer())
+        return (above or self.sign == "any" or self.reading == "gauge") and is_there
 
 
 class Quantity(NamedTuple):
@@ -994,6 +996,9 @@ def _check_bounds(reading: _Reading, kind: QuantityKind, value: float) -> None:
         must = f"{kind.least} or more" if value < least else f"{kind.most} or less"
         message = f"{kind.name} is by its definition {must}"
         raise reading.fault("quantity-beyond-definition", message, "number", expected=must)
+    if kind.whole and not value.is_integer():
+        message = f"{kind.name} must be a whole number"
+        raise reading.fault("quantity-beyond-definition", message, "number", expected="a whole number")
 
 
 @functools.lru_cache(maxsize=32)
@@ -1025,12 +1030,12 @@ _SIGN_OF_NAME: dict[str, Sign] = {
     "gauge pressure": "any",
 }
 _ENTRY_KEYS = frozenset(
-    {"symbol", "unit", "digits", "meaning", "scale", "reading", "flag", "sign", "least", "most"}
+    {"symbol", "unit", "digits", "meaning", "scale", "reading", "flag", "sign", "least", "most", "whole"}
 )
 
 
 def kind_from_entry(name: str, entry: Mapping[str, str]) -> QuantityKind:
-    """A vocabulary entry (symbol, unit, digits, meaning; scale, reading, flag, sign, least, most optional) as a kind.
+    """A vocabulary entry (symbol, unit, digits, meaning; scale, reading, flag, sign, least, most, whole optional) as a kind.
 
     The sign follows from the name or the unit where the entry does not state it. Raises ``ValueError`` for an
     entry that the vocabulary may not hold, and ``QuantityFault`` for its unit.
@@ -1052,6 +1057,7 @@ def kind_from_entry(name: str, entry: Mapping[str, str]) -> QuantityKind:
         sign=_sign(name, entry, dimension),
         least=entry.get("least", ""),
         most=entry.get("most", ""),
+        whole=_one_of(name, entry, "whole", ("", "false", "true")) == "true",
     )
 
 

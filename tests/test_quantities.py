@@ -608,6 +608,8 @@ def test_in_unit_and_back(kind: str, value: float) -> None:
         ("1.02", "emissivity", "1 or less"),
         ("90.1 deg", "chevron angle", "90 deg or less"),
         ("0.99", "enlargement", "1 or more"),
+        ("10.5", "baffles", "a whole number"),
+        ("4 %", "plugged tubes", "a whole number"),
     ],
 )
 def test_a_quantity_beyond_its_definition(text: str, kind: str, expected: str) -> None:
@@ -617,7 +619,13 @@ def test_a_quantity_beyond_its_definition(text: str, kind: str, expected: str) -
 
 @pytest.mark.parametrize(
     ("text", "kind"),
-    [("100 %", "baffle cut"), ("90 deg", "chevron angle"), ("1", "enlargement"), ("0", "emissivity")],
+    [
+        ("100 %", "baffle cut"),
+        ("90 deg", "chevron angle"),
+        ("1", "enlargement"),
+        ("0", "emissivity"),
+        ("11", "baffles"),
+    ],
 )
 def test_a_quantity_at_the_end_of_its_definition(text: str, kind: str) -> None:
     assert read_quantity(text, KINDS[kind]).text == text
