@@ -17,6 +17,7 @@ from typing import NamedTuple
 
 from calcbook.fault_codes import CODES
 
+LONGEST_NAME = 4096
 EXCERPT_WIDTH = 110
 # A text that YAML takes for something else: other faults at the same place only follow from it.
 TRAPS = frozenset(
@@ -67,14 +68,16 @@ class Fault:
         return (self.place.file, self.place.line, self.place.column, self.code, self.message)
 
     def __str__(self) -> str:
-        lines = [f"{self.place.file}:{self.place.line}:{self.place.column}: {self.code}: {self.message}"]
+        # Names of files and what is like them come from elsewhere, too.
+        file = shown(self.place.file, LONGEST_NAME)
+        lines = [f"{file}:{self.place.line}:{self.place.column}: {self.code}: {self.message}"]
         lines += _excerpt_lines(self.place)
         if self.found and self.found not in self.message and self.found not in self.place.excerpt:
             lines.append(f"    found: {self.found}")
         if self.expected:
             lines.append(f"    expected: {self.expected}")
         if self.nearest:
-            lines.append(f"    nearest: {', '.join(self.nearest)}")
+            lines.append(f"    nearest: {', '.join(shown(name, LONGEST_NAME) for name in self.nearest)}")
         return "\n".join(lines)
 
 

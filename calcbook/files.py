@@ -6,8 +6,10 @@ May import: the standard library only.
 from __future__ import annotations
 
 import contextlib
+import errno
 import os
 import tempfile
+from collections.abc import Mapping
 from pathlib import Path
 
 
@@ -16,8 +18,33 @@ def write_whole(path: Path, text: str | bytes) -> None:
 
     Raises ``OSError`` when the folder cannot be written; the old file stays.
     """
-    path.parent.mkdir(parents=True, exist_ok=True)
-    handle, name = tempfile.mkstemp(prefix=".writing-", dir=path.parent)
+    write_together({path: text})
+
+
+def write_together(texts: Mapping[Path, str | bytes]) -> None:
+    """Write several files as ``write_whole`` does, none of them put in its place before all are written.
+
+    Raises ``OSError`` where one cannot be written or stands where no file can be; all old files stay.
+    """
+    temporaries: dict[Path, Path] = {}
+    try:
+        for path, text in texts.items():
+            path.parent.mkdir(parents=True, exist_ok=True)
+            if path.is_dir():
+                raise IsADirectoryError(errno.EISDIR, os.strerror(errno.EISDIR), str(path))
+            temporaries[path] = _temporary(path.parent, text)
+        for path, temporary in temporaries.items():
+            temporary.replace(path)
+    except BaseException:
+        for temporary in temporaries.values():
+            with contextlib.suppress(OSError):
+                temporary.unlink()
+        raise
+
+
+def _temporary(folder: Path, text: str | bytes) -> Path:
+    """A file of its own in a folder that holds a text, down to the disk."""
+    handle, name = tempfile.mkstemp(prefix=".writing-", dir=folder)
     temporary = Path(name)
     try:
         with os.fdopen(handle, "wb") as stream:
@@ -25,8 +52,8 @@ def write_whole(path: Path, text: str | bytes) -> None:
             stream.flush()
             os.fsync(stream.fileno())
         temporary.chmod(0o644)
-        temporary.replace(path)
     except BaseException:
         with contextlib.suppress(OSError):
             temporary.unlink()
         raise
+    return temporary

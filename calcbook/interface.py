@@ -21,6 +21,8 @@ from calcbook.uncertainty.flips import distances_to_flip
 from calcbook.uncertainty.sweep import axes_of, sweep_of
 
 HOUSE_CARDS = "cards"
+# So many calculations may take from each other in a row before one is pinned to an issued revision.
+DEEPEST_LINKS = 24
 
 __all__ = ["NotConverged", "read", "record_text", "solve", "solve_file"]
 
@@ -103,6 +105,18 @@ def links_of(path: Path, settings: Settings, above: tuple[Path, ...] = ()) -> Li
                         "calculations take from each other in a circle",
                         names,
                         "links that end at a calculation without links",
+                    )
+                ]
+            )
+        if len(here) > DEEPEST_LINKS:
+            raise Faults(
+                [
+                    Fault(
+                        "link-too-deep",
+                        Place(path.name),
+                        "calculations take from each other in too long a row",
+                        f"{len(here)} calculations",
+                        f"at most {DEEPEST_LINKS}; a link to an issued revision ends the row",
                     )
                 ]
             )

@@ -2,7 +2,7 @@
 
 A link that names a revision takes the figure from that issued copy; one that names none takes it from the
 source as it stands now, solved in turn, and is not pinned. May import: ``calcfile``, ``documents``,
-``faults``. Must never: write, or solve by itself (the solver is handed in).
+``faults``, ``seals``. Must never: write, or solve by itself (the solver is handed in).
 """
 
 from __future__ import annotations
@@ -17,9 +17,9 @@ from pathlib import Path
 from calcbook.calcfile.links import CURRENT, Link, LinkText
 from calcbook.documents import Mapping as MappingNode
 from calcbook.documents import read_file
-from calcbook.faults import Fault, Faults, nearest_names
+from calcbook.faults import Fault, Faults, nearest_names, shown
+from calcbook.seals import FINAL, ISSUED, RESULTS, check_seal, read_seal
 
-ISSUED = "issued"
 NUMBER_LINE = re.compile(r"^\s*(?:calculation:\s*\{.*?)?number:\s*[\"']?([A-Za-z0-9_.-]+)", re.MULTILINE)
 DIGITS = 10
 
@@ -47,7 +47,7 @@ class Links:
 
     def __call__(self, text: LinkText) -> Link:
         """The link behind a `from:`. Raises ``Faults``: link-source-unknown, link-revision-unknown,
-        link-result-unknown, and the faults of a source that is solved in turn."""
+        issued-altered, link-result-unknown, and the faults of a source that is solved in turn."""
         file = self._file(text.calculation)
         if text.revision:
             return self._pinned(text, file)
@@ -71,10 +71,10 @@ class Links:
     def _pinned(self, text: LinkText, file: Path | None) -> Link:
         folder = self.output / text.calculation / ISSUED / text.revision
         try:
-            seal = json.loads((folder / "seal.json").read_text(encoding="utf-8"))
-            results = json.loads((folder / "results.json").read_text(encoding="utf-8"))["results"]
-            kind, digest = str(seal["kind"]), str(seal["digest"]["results"])
-        except (OSError, ValueError, KeyError, TypeError):
+            seal = read_seal(folder)
+            altered = check_seal(folder)
+            results = json.loads((folder / RESULTS).read_text(encoding="utf-8"))["results"]
+        except (Faults, OSError, ValueError, KeyError, TypeError):
             raise _fault(
                 "link-revision-unknown",
                 text,
@@ -82,6 +82,15 @@ class Links:
                 text.revision,
                 ", ".join(self._issued(text.calculation)) or "an issued revision",
             ) from None
+        if altered:
+            found = "; ".join(f"{finding.file}: {finding.text}" for finding in altered)
+            raise _fault(
+                "issued-altered",
+                text,
+                f"revision {text.revision} of {text.calculation} is not what was issued",
+                shown(found, 200),
+                "the copy as it was issued",
+            )
         table = {
             name: (item["value"], item["unit"])
             for name, item in results.items()
@@ -91,10 +100,11 @@ class Links:
         state = CURRENT
         if file is not None and _is_void(file):
             state = "void"
-        elif kind != "final":
+        elif seal.kind != FINAL:
             state = "preliminary"
         elif newer := self._superseding(text.calculation, text.revision):
             state = f"source moved: revision {newer} supersedes {text.revision}"
+        digest = seal.digest.get("results", "")
         return Link(text.calculation, text.result, text.revision, digest, figure(value, unit), state)
 
     def _result(self, text: LinkText, results: Mapping[str, tuple[float, str]]) -> tuple[float, str]:
@@ -122,12 +132,10 @@ class Links:
         """The issued revision that supersedes one, if there is any."""
         for other in self._issued(number):
             try:
-                seal = json.loads(
-                    (self.output / number / ISSUED / other / "seal.json").read_text(encoding="utf-8")
-                )
-            except (OSError, ValueError):
+                seal = read_seal(self.output / number / ISSUED / other)
+            except Faults:
                 continue
-            if seal.get("supersedes") == revision:
+            if seal.supersedes == revision:
                 return other
         return ""
 

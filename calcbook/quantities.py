@@ -228,6 +228,8 @@ class QuantityKind(NamedTuple):
         """Whether the quantity can have an SI value, by its sign and its definition."""
         least, most = self.bounds
         above = value > 0.0 if self.sign == "positive" else value >= 0.0
+        if self.scale == "point" and value <= 0.0:
+            return False
         is_there = least <= value <= most and (not self.whole or float(value).is_integer())
         return (above or self.sign == "any" or self.reading == "gauge") and is_there
 

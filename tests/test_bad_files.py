@@ -33,6 +33,8 @@ MADE_HERE = {
     "file-not-utf8",
     "file-not-text",
     "file-empty",
+    "link-too-deep",
+    "issued-altered",
 }
 # Codes of faults in cards: tests/library/test_bad_cards.py.
 CARDS = {

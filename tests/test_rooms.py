@@ -26,6 +26,7 @@ ORDER = (
     "files",
     "quantities",
     "documents",
+    "seals",
     "formulas",
     "properties",
     "library",

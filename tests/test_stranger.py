@@ -367,7 +367,8 @@ def table_row_fault(page: PageRead, relation: str, values: str, service: str) ->
 def _row_holds(cells: dict[str, str], wanted: dict[str, str]) -> bool:
     for symbol, text in wanted.items():
         if symbol in cells:
-            if cells[symbol] != text and (text.isalpha() or float(cells[symbol]) != number(text)):
+            is_word = text.replace("_", "").isalpha()
+            if cells[symbol] != text and (is_word or float(cells[symbol]) != number(text)):
                 return False
         elif not float(cells["from"]) <= number(text) <= float(cells["to"]):
             return False

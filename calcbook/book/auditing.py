@@ -14,9 +14,9 @@ from calcbook.faults import Faults
 from calcbook.interface import NotConverged
 from calcbook.library.errata import Erratum, read_errata
 from calcbook.record.blocks import Block, Heading, Paragraph, Table
-from calcbook.revisions.seals import Issued, check_seals
 from calcbook.revisions.sides import load_issued
 from calcbook.revisions.signoffs import lies_ahead, signoffs_path
+from calcbook.seals import Issued, check_seals
 
 REFUSE_ANY = "refuse any issue"
 

@@ -40,7 +40,16 @@ def find_calculations(paths: Iterable[Path], output: Path | None, collector: Col
                 expected="*.yaml files",
             )
         for file in files:
-            key = file.resolve()
+            try:
+                key = file.resolve()
+            except (OSError, RuntimeError):
+                collector.add(
+                    "file-not-found",
+                    Place(file.as_posix()),
+                    "the file is a link that leads nowhere",
+                    expected="a calculation file",
+                )
+                continue
             found.setdefault(key, Found(file, file.as_posix(), _output(file, output)))
     return tuple(found.values())
 

@@ -10,7 +10,7 @@ from calcbook.book.mistakes import PROCESS_ENDED, mistake_words
 from calcbook.book.pool import pool_map
 from calcbook.chain.outcome import Solved
 from calcbook.faults import Fault, Faults, Place
-from calcbook.files import write_whole
+from calcbook.files import write_together
 from calcbook.interface import NotConverged, solve_file
 
 RECORD, RESULTS = "record.md", "results.json"
@@ -135,8 +135,7 @@ def written(texts: Texts, taken: dict[str, str]) -> Outcome:
         return Outcome(texts.found.name, faults=(fault,))
     folder = texts.found.output / number
     try:
-        write_whole(folder / RECORD, texts.record)
-        write_whole(folder / RESULTS, texts.results)
+        write_together({folder / RECORD: texts.record, folder / RESULTS: texts.results})
     except OSError as error:
         fault = Fault(
             "output-not-writable",

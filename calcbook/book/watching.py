@@ -26,7 +26,7 @@ from calcbook.links import ISSUED
 PERIOD, PERIOD_PER_FILE = 0.006, 0.0001
 # A file may be caught half written: it is read when it has not changed for so long.
 SETTLED = 0.004
-TABLE_NAMED = re.compile(r"[^\n\"',:{}\[\]]+\.csv\b")
+FILE_NAMED = re.compile(r"\bfile *: *[\"']?([^\n\"',{}\[\]]+)")
 LINKED = re.compile(r"\bfrom *:")
 
 # What tells one state of a file from another; None where there is none.
@@ -150,7 +150,7 @@ def _rests_on(item: _Watched) -> Iterator[Path]:
         text = path.read_text(encoding="utf-8", errors="replace")
     except OSError:
         return
-    for name in TABLE_NAMED.findall(text):
+    for name in FILE_NAMED.findall(text):
         yield folder / name.strip()
     if LINKED.search(text):
         yield folder

@@ -33,6 +33,7 @@ from calcbook.calcfile.calculation import (
     Value,
 )
 from calcbook.calcfile.duty import read_duty
+from calcbook.calcfile.empty import is_empty
 from calcbook.calcfile.in_service import read_cleaning, read_time_in_service
 from calcbook.calcfile.links import LinkText, Resolve
 from calcbook.calcfile.meaning import meaning_of
@@ -637,8 +638,8 @@ class Reader:
             answer = fields.node("verified")
             if isinstance(answer, MappingNode):
                 verified = read_mapping(answer, described.VERIFIED, self.collector, answer.place)
-                by, date = verified.text("by"), self.date(verified, "date")
-                evidence = verified.text("evidence")
+                by, date = self.saying(verified, "by"), self.date(verified, "date")
+                evidence = self.saying(verified, "evidence")
             elif isinstance(answer, Scalar) and answer.text not in ("no", "false"):
                 self.collector.add(
                     "verification-incomplete",
@@ -1344,6 +1345,19 @@ class Reader:
             return None
         return given
 
+    def saying(self, fields: Fields, key: str) -> str:
+        """A text that closes an open item: a fault where it says nothing."""
+        text = fields.text(key)
+        if key in fields and is_empty(text):
+            self.collector.add(
+                "text-empty",
+                fields.place_of(key),
+                f"`{key}` closes an open item and says nothing",
+                found=shown(text),
+                expected="what it rests on, or who answers for it",
+            )
+        return text
+
     def accept(self, cases: Mapping[str, Mapping[str, Given]]) -> tuple[Acceptance, ...]:
         result = []
         for item in self.items("accept"):
@@ -1376,8 +1390,8 @@ class Reader:
                     fields.text("in") or "all",
                     direction,
                     bound,
-                    fields.text("because"),
-                    fields.text("by"),
+                    self.saying(fields, "because"),
+                    self.saying(fields, "by"),
                     self.date(fields, "date"),
                     fields.place_of("check"),
                 )

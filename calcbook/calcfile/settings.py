@@ -3,14 +3,15 @@
 from __future__ import annotations
 
 from pathlib import Path
+from typing import NamedTuple
 
 from calcbook.calcfile import descriptions as described
 from calcbook.calcfile.calculation import Settings, Value
 from calcbook.calcfile.meaning import meaning_of
 from calcbook.documents import Fields, Node, Scalar, Sequence, read_file, read_mapping
 from calcbook.documents import Mapping as MappingNode
-from calcbook.faults import Collector
-from calcbook.quantities import QuantityFault, read_any
+from calcbook.faults import Collector, shown
+from calcbook.quantities import QuantityFault, read_any, unit_factor
 
 BOOK_FILE = "book.yaml"
 
@@ -45,8 +46,46 @@ def read_settings(folder: Path) -> Settings:
         open_items=fields.text("open items", "refuse final issue"),
         plain=_calculating(document.root),
     )
+    for value, limit in (
+        (settings.site_pressure, SITE_PRESSURE),
+        (settings.surface_temperature, SURFACE_TEMPERATURE),
+        (settings.excess_surface, EXCESS_SURFACE),
+    ):
+        _hold(value, limit, collector)
     collector.stop_if_any()
     return settings
+
+
+class _Usual(NamedTuple):
+    """Between what a setting lies in every book: beyond it a unit is missing or another one is meant."""
+
+    name: str
+    unit: str
+    low: float
+    high: float
+    expected: str
+
+
+# The highest plants stand at 5000 m; a hand draws back from 43 degC on, and lagging is set at 200 degC at most; a unit
+# with more than twice the surface that it needs clean is another machine: all common practice.
+SITE_PRESSURE = _Usual("site pressure", "Pa", 4e4, 1.15e5, "an absolute pressure from 40 to 115 kPa")
+SURFACE_TEMPERATURE = _Usual("surface temperature", "K", 293.15, 473.15, "a temperature from 20 to 200 degC")
+EXCESS_SURFACE = _Usual("excess surface", "1", 0.0, 2.0, "a share from 0 to 200 %")
+
+
+def _hold(value: Value | None, usual: _Usual, collector: Collector) -> None:
+    if value is None or value.quantity is None:
+        return
+    quantity = value.quantity
+    is_kind = quantity.dimension == unit_factor(usual.unit)[1] and quantity.reading != "gauge"
+    if not is_kind or not usual.low <= quantity.value <= usual.high:
+        collector.add(
+            "number-out-of-proportion",
+            value.place,
+            f"no book has this {usual.name}",
+            found=shown(value.text),
+            expected=usual.expected,
+        )
 
 
 def _calculating(root: Node) -> object:

@@ -19,6 +19,8 @@ def read_lines(path: Path, what: str, megabytes: int, place: Place, collector: C
     """
     largest = megabytes * MEGABYTE
     try:
+        if path.exists() and not path.is_file():
+            raise OSError("no regular file")
         with path.open("rb") as stream:
             data = stream.read(largest + 1)
     except OSError:

@@ -97,6 +97,8 @@ IMPLIED = {
 PLACES_SPREAD = 0.2
 # Slopes below this part of U are the rounding of sums that cancel.
 NOISE = 1e-13
+# A criterion on a share states no larger one without a sign of per cent: 500 % (common practice).
+LARGEST_SHARE = 5.0
 OPPOSITE = {">=": 1.0, ">": 1.0, "<=": -1.0, "<": -1.0}
 
 
@@ -845,6 +847,16 @@ class _Analysis:
                 return None
             return solution.figure(name)
         assert value.quantity is not None, "a limit is a symbol or a quantity"
+        if kind.name == "ratio" and not value.quantity.unit_text and value.quantity.value > LARGEST_SHARE:
+            self.collector.add(
+                "number-out-of-proportion",
+                value.place,
+                f"`{criterion.result}` is a share: {value.text} would be {100.0 * value.quantity.value:g} %",
+                found=value.text,
+                expected="a share of one, or per cent",
+                nearest=(f"{value.text} %",),
+            )
+            return None
         try:
             return np.asarray(as_kind(value.quantity, kind).value)
         except QuantityFault as error:

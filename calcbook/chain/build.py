@@ -7,6 +7,7 @@ from dataclasses import replace
 
 from calcbook.calcfile import Calculation
 from calcbook.calcfile.calculation import Derived, Term, Value
+from calcbook.calcfile.empty import is_empty
 from calcbook.calcfile.links import CURRENT
 from calcbook.calcfile.specified import is_open
 from calcbook.chain.circuit import Circuit
@@ -19,7 +20,7 @@ from calcbook.chain.in_service import lay_out_in_service
 from calcbook.chain.latent import BECAUSE, NO_FLOW, PHASE_CHANGE, SOME_FLOW, WHOLE_FLOW
 from calcbook.chain.petroleum import lay_out_cards
 from calcbook.chain.pressure import asked_symbols, lay_out_pressure_drop
-from calcbook.chain.scope import Scope, is_empty_source, unnamed_kind
+from calcbook.chain.scope import Scope, unnamed_kind
 from calcbook.chain.services import check_services
 from calcbook.chain.specified import SpecifiedFouling
 from calcbook.chain.streams import lay_out_stream
@@ -273,7 +274,7 @@ class _Builder:
 
         stated = self.calculation.uncertainty
         for one in stated.correlations if stated is not None else ():
-            if is_empty_source(one.source):
+            if is_empty(one.source):
                 self.scope.open(
                     f"correlation {one.first} {one.second}/source",
                     "source",

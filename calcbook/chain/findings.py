@@ -9,6 +9,7 @@ from typing import Any
 
 import numpy as np
 
+from calcbook.calcfile.calculation import Derived
 from calcbook.chain.checks import NOT_EVALUABLE, OUTSIDE, STATES, WITHIN, apart
 from calcbook.chain.fluids import PropertyOperation
 from calcbook.chain.gaps import gaps
@@ -32,7 +33,7 @@ from calcbook.formulas import number_text
 from calcbook.library import vocabulary
 from calcbook.library.operations import run
 from calcbook.properties import FluidAtPressure, PropertyFault
-from calcbook.quantities import si_unit, unit_display
+from calcbook.quantities import QuantityKind, si_unit, unit_display
 
 Array = np.ndarray
 ICE_POINT = 273.15
@@ -40,6 +41,12 @@ ICE_POINT = 273.15
 SIGNS = {"positive": " above zero", "not negative": " of zero or more"}
 # Stands for a figure that a state does not have: none that it has is negative.
 UNKNOWN = -1.0
+# Figures that are derived lie between these in SI, or are zero: growth rates of deposits are the smallest.
+SMALLEST_DERIVED, LARGEST_DERIVED = 1e-16, 1e13
+# How near a move in kelvin is to a whole number that rounding alone keeps them apart.
+SAME_MOVE = 1e-9
+# How a unit of temperature was understood, see ``Quantity.reading``.
+POINT, POINT_OR_DIFFERENCE = "point", "point or difference"
 # A pure fluid's two sides of saturation meet within rounding; a blend's dew point lies above by more than this, K.
 GLIDE = 1e-3
 
@@ -117,15 +124,74 @@ def _check_flows(chain: Chain, values: Mapping[str, Any], collector: Collector, 
 
 def _check_derived(chain: Chain, values: Mapping[str, Any], collector: Collector, case: str) -> None:
     """That every derived quantity has a value, and one that a quantity of its kind can have."""
+    moves = _moves_of_derived(chain, values)
     for symbol, item in chain.calculation.derived.items():
         if f"derived/{symbol}" not in values:
             continue
         kind, value = chain.derived_kinds.get(symbol), float(values[f"derived/{symbol}"])
-        if not math.isfinite(value) or (kind is not None and not kind.allows(value)):
+        if kind is not None and kind.dimension == vocabulary()["temperature"].dimension:
+            _check_scale(item, kind, moves[symbol], collector, case)
+        if not _has_size(value) or (kind is not None and not kind.allows(value)):
             what = f"the {f'{kind.name} ' if kind is not None else ''}{symbol} that is derived here"
-            must = SIGNS.get(kind.sign, "") if kind is not None else ""
+            must = _must(kind) if kind is not None else ""
             unit = kind.unit if kind is not None else si_unit(chain.dimensions[f"derived/{symbol}"])
             _report_derived(item.place, what, value, unit, must, collector, case)
+
+
+def _must(kind: QuantityKind) -> str:
+    return " above absolute zero" if kind.scale == "point" else SIGNS.get(kind.sign, "")
+
+
+def _has_size(value: float) -> bool:
+    """Whether a figure is finite, and not beyond everything that this trade calculates with."""
+    return value == 0.0 or SMALLEST_DERIVED <= abs(value) <= LARGEST_DERIVED
+
+
+def _moves_of_derived(chain: Chain, values: Mapping[str, Any]) -> dict[str, float]:
+    """By how many K each derived quantity moves where every temperature among the givens moves by one.
+
+    NaN where that hangs on a given in K or degR of which nothing says whether it is a temperature or a difference.
+    """
+    moves = []
+    for doubtful in (0.0, 1.0):
+        part = {POINT: 1.0, POINT_OR_DIFFERENCE: doubtful}
+        moved: dict[str, Any] = dict(values)
+        for symbol, given in chain.calculation.givens.items():
+            quantity = given.value.quantity
+            move = part.get(quantity.reading, 0.0) if quantity is not None else 0.0
+            moved[f"given/{symbol}"] = np.asarray(values[f"given/{symbol}"]) + move
+        run([step for step in chain.steps if step.id.startswith("derived/")], moved)
+        moves.append(
+            {
+                symbol: float(moved[f"derived/{symbol}"]) - float(values[f"derived/{symbol}"])
+                for symbol in chain.calculation.derived
+                if f"derived/{symbol}" in values
+            }
+        )
+    first, second = moves
+    return {
+        symbol: move if abs(move - second[symbol]) < SAME_MOVE else math.nan for symbol, move in first.items()
+    }
+
+
+def _check_scale(item: Derived, kind: QuantityKind, moves: float, collector: Collector, case: str) -> None:
+    """That a temperature is no difference, sum or multiple of temperatures, and a difference no temperature.
+
+    A law that makes a temperature of another (of the sky, of a wet bulb) may move by any other part of a kelvin.
+    """
+    wanted = 1.0 if kind.scale == "point" else 0.0
+    if math.isnan(moves) or abs(moves - round(moves)) > SAME_MOVE:
+        return
+    whole = round(moves)
+    if whole != wanted:
+        collector.add(
+            "derived-not-possible",
+            item.place,
+            f"{f'case {case}: ' if case else ''}the {kind.name} {item.symbol} that is derived here moves by {whole} K"
+            " where the temperatures it is taken from move by 1 K",
+            found=item.relation.text.strip(),
+            expected="a temperature, which moves by 1 K" if wanted else "a difference, which does not move",
+        )
 
 
 def _check_factors(chain: Chain, values: Mapping[str, Any], collector: Collector, case: str) -> None:
@@ -136,7 +202,7 @@ def _check_factors(chain: Chain, values: Mapping[str, Any], collector: Collector
         steps = [step for step in film_steps(chain) if step.id == f"{term.name}/factor"]
         run([step for step in steps if known.keys() >= set(step.inputs.values())], known)
         factor = float(known.get(f"{term.name}/factor", 1.0))
-        if not (math.isfinite(factor) and factor > 0.0):
+        if not (_has_size(factor) and factor > 0.0):
             what = f"the factor that {term.name} scales with"
             _report_derived(
                 term.place_of("scales with"), what, factor, "1", SIGNS["positive"], collector, case
@@ -153,7 +219,9 @@ def _report_derived(
         found=f"{number_text(value, 4)} {unit_display(unit)}".rstrip()
         if math.isfinite(value)
         else "no finite value",
-        expected=f"a finite value{must}",
+        expected=f"a finite value{must}, from {SMALLEST_DERIVED:g} to {LARGEST_DERIVED:g} in SI units or zero"
+        if math.isfinite(value) and not _has_size(value)
+        else f"a finite value{must}",
     )
 
 

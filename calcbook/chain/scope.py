@@ -8,6 +8,7 @@ from dataclasses import dataclass, field
 
 from calcbook.calcfile import Calculation
 from calcbook.calcfile.calculation import Given, Value
+from calcbook.calcfile.empty import is_empty
 from calcbook.chain.types import ChainStep, Input, OpenItem, RunnerAssumption
 from calcbook.faults import Collector, Place, nearest_names, shown
 from calcbook.formulas import Relation, RelationFault, dimension
@@ -15,22 +16,6 @@ from calcbook.library import vocabulary
 from calcbook.library.operations import Operation, RelationOperation
 from calcbook.quantities import DIMENSIONLESS, Dimension, QuantityFault, QuantityKind, as_kind, si_unit
 
-EMPTY_SOURCES = frozenset(
-    (
-        "",
-        "tbd",
-        "tbc",
-        "todo",
-        "none",
-        "n/a",
-        "na",
-        "?",
-        "-",
-        "unknown",
-        "to be determined",
-        "to be confirmed",
-    )
-)
 STANDARD_PRESSURE = 101_325.0
 
 
@@ -278,17 +263,12 @@ class Scope:
 
     def check_source(self, value: Value, name: str) -> None:
         """A literal that moves a result needs a source; a bare or empty one is an open item."""
-        if is_empty_source(value.source):
+        if is_empty(value.source):
             self.open(
                 f"{name}/source",
                 "source",
                 f"The value {value.text} ({name.replace('/', ', ')}) has no source.",
             )
-
-
-def is_empty_source(source: str) -> bool:
-    """Whether a source names nothing: absent, or a word that stands for one to come."""
-    return source.strip(" .").casefold() in EMPTY_SOURCES
 
 
 def unnamed_kind(symbol: str, dim: Dimension) -> QuantityKind:

@@ -6,6 +6,7 @@ from dataclasses import replace
 
 from calcbook import properties
 from calcbook.calcfile.calculation import FluidText, Stream, Value
+from calcbook.calcfile.empty import is_empty
 from calcbook.chain.fluids import BoilingOperation, FluidSource, PropertyOperation
 from calcbook.chain.petroleum import petroleum
 from calcbook.chain.scope import Scope
@@ -250,9 +251,7 @@ def fluid_source(scope: Scope, text: FluidText, library: Library) -> FluidSource
 
 
 def _check_fluid_source(scope: Scope, text: FluidText) -> None:
-    from calcbook.chain.scope import EMPTY_SOURCES
-
-    if text.source.strip(" .").casefold() in EMPTY_SOURCES:
+    if is_empty(text.source):
         scope.open(f"fluid {text.name}/source", "source", f"The properties of {text.name} have no source.")
 
 

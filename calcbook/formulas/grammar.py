@@ -53,7 +53,7 @@ _STRENGTH = {"+": 0, "-": 0, "*": 1, "/": 1}
 _WORDS = ("and", "or", "not", "if", "else")
 _NAME = r"[A-Za-z_][A-Za-z0-9_]*"
 _TYPED_TOKEN = re.compile(
-    rf"(?P<space> +)|(?P<number>(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?)|(?P<name>{_NAME}(?:\.{_NAME})*)"
+    rf"(?P<space> +)|(?P<number>(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]+)?)|(?P<name>{_NAME}(?:\.{_NAME})*)"
     r"|(?P<op>\*\*|//|<=|>=|==|!=|[-+*/(),<>=])"
 )
 _WRITTEN_TOKEN = re.compile(

@@ -23,7 +23,9 @@ from calcbook.revisions.lifecycle import (
     unwritten_reasons,
     with_issue,
 )
-from calcbook.revisions.seals import (
+from calcbook.revisions.signing import Work, head_place, refuse_closed, write_record
+from calcbook.revisions.signoffs import PARTS, PREPARED, SignOffFile, signoffs_path, signoffs_text
+from calcbook.seals import (
     BOOK,
     CALCULATION,
     FINAL,
@@ -39,8 +41,6 @@ from calcbook.revisions.seals import (
     seal_text,
     sha256_of,
 )
-from calcbook.revisions.signing import Work, head_place, refuse_closed, write_record
-from calcbook.revisions.signoffs import PARTS, PREPARED, SignOffFile, signoffs_path, signoffs_text
 
 REFUSE_ANY = "refuse any issue"
 

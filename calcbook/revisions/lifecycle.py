@@ -7,6 +7,7 @@ from dataclasses import dataclass, replace
 from pathlib import Path
 
 from calcbook.calcfile import Calculation, Settings
+from calcbook.calcfile.empty import is_empty
 from calcbook.calcfile.reading import NUMBER
 from calcbook.chain.outcome import Solved
 from calcbook.chain.types import OpenItem
@@ -15,7 +16,6 @@ from calcbook.faults import Faults
 from calcbook.interface import NotConverged
 from calcbook.record.blocks import Block, Paragraph
 from calcbook.record.life import Life, SignOffLine
-from calcbook.revisions.seals import FINAL, PRELIMINARY, Issued, issued_copies
 from calcbook.revisions.signoffs import (
     PARTS,
     PREPARED,
@@ -34,6 +34,7 @@ from calcbook.revisions.signoffs import (
     signoffs_path,
     software_changed,
 )
+from calcbook.seals import FINAL, PRELIMINARY, Issued, issued_copies
 
 IN_PREPARATION, ISSUED_STATE, SUPERSEDED, VOID = "in preparation", "issued", "superseded", "void"
 NOT_KNOWN = "not known"
@@ -158,7 +159,7 @@ def unwritten_reasons(calculation: Calculation) -> tuple[OpenItem, ...]:
             f"The reason of revision {item.revision} is to be written.",
         )
         for item in calculation.revisions
-        if item.reason.casefold().strip(" .…") in (TO_BE_WRITTEN, "tbd", "")
+        if is_empty(item.reason)
     )
 
 

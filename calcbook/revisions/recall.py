@@ -28,8 +28,8 @@ from calcbook.revisions.changes import entries_of, figure_of, text_of
 from calcbook.revisions.comparing import Verdict, check_flips, criteria_flips
 from calcbook.revisions.comparison_page import Scale, relative_text, side_name
 from calcbook.revisions.mixtures import LISTS, unlinked
-from calcbook.revisions.seals import CALCULATION, ISSUED, issued_copies
 from calcbook.revisions.sides import Side, load_issued, load_side
+from calcbook.seals import CALCULATION, ISSUED, issued_copies
 
 # Keys whose text says what a figure or statement rests on.
 GROUNDS = ("source", "basis", "evidence")

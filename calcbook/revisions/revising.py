@@ -13,7 +13,7 @@ from calcbook.documents import Mapping, Scalar, Sequence, read_file, read_text
 from calcbook.faults import Fault, Faults, Place, shown
 from calcbook.files import write_whole
 from calcbook.revisions.lifecycle import TO_BE_WRITTEN, lifecycle_of
-from calcbook.revisions.seals import FINAL, revision_order
+from calcbook.seals import FINAL, revision_order
 
 LETTERS, NUMBERS, BOTH = "letters", "numbers", "letters then numbers"
 FIRST_NUMBER = "0"

@@ -22,7 +22,7 @@ from calcbook.faults import Collector, Fault, Faults, Place, nearest_names, show
 from calcbook.interface import HOUSE_CARDS, solve_file
 from calcbook.record import Digest, digest_of
 from calcbook.revisions.git import Commit, commit_of
-from calcbook.revisions.seals import (
+from calcbook.seals import (
     CALCULATION,
     ISSUED,
     RESULTS,

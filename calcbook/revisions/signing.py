@@ -9,13 +9,12 @@ from pathlib import Path
 from calcbook.chain.outcome import Solved
 from calcbook.documents import Mapping, Scalar, read_file
 from calcbook.faults import Fault, Faults, Place, nearest_names, shown
-from calcbook.files import write_whole
+from calcbook.files import write_together, write_whole
 from calcbook.interface import solve_file
 from calcbook.record import digest_of, record_text, results_text, software_of
 from calcbook.record.markdown import visible
 from calcbook.revisions import forms
 from calcbook.revisions.lifecycle import VALID, VOID, Judged, Lifecycle, life_of, lifecycle_of
-from calcbook.revisions.seals import RECORD, RESULTS
 from calcbook.revisions.signoffs import (
     APPROVED,
     PREPARED,
@@ -35,6 +34,7 @@ from calcbook.revisions.signoffs import (
     wanted_person,
     write_signoffs,
 )
+from calcbook.seals import RECORD, RESULTS
 
 WITHOUT_FORM = (PREPARED, APPROVED)
 
@@ -344,8 +344,7 @@ def write_record(work: Work) -> None:
     record = record_text(work.solved, life_of(work.path, work.solved, work.output))
     digest = digest_of(work.solved)
     results = results_text(work.solved, digest, software_of(digest))
-    write_whole(folder / RECORD, record)
-    write_whole(folder / RESULTS, results)
+    write_together({folder / RECORD: record, folder / RESULTS: results})
 
 
 def declare_void(work: Work, person: str, date: datetime.date, because: str) -> Step:

@@ -16,8 +16,8 @@ from calcbook.record.page import counted
 from calcbook.revisions.comparing import Comparison, compare
 from calcbook.revisions.comparison_page import comparison_blocks, comparison_data
 from calcbook.revisions.git import Commit, commit_of
-from calcbook.revisions.seals import ISSUED
 from calcbook.revisions.sides import Side, load_from_commit, load_side, output_of
+from calcbook.seals import ISSUED
 
 BESIDE = (".signoffs.yaml", ".form.yaml")
 

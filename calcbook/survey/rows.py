@@ -17,6 +17,8 @@ NUMBER = re.compile(r"[+-]?([0-9]+\.?[0-9]*|\.[0-9]+)([eE][+-]?[0-9]{1,3})?")
 NUMBER_CHARACTERS = frozenset("0123456789+-.eE\n")
 DATE_TIME = re.compile(r"[0-9]{4}-[0-9]{2}-[0-9]{2}([ T][0-9]{2}:[0-9]{2}(:[0-9]{2})?)?")
 EPOCH = datetime.datetime(1970, 1, 1)
+# The years that a history can be of.
+FIRST_MOMENT, LAST_MOMENT = ((datetime.datetime(year, 1, 1) - EPOCH).total_seconds() for year in (1900, 2200))
 
 
 @dataclass(frozen=True)
@@ -71,8 +73,13 @@ def _number(cell: str) -> float:
 
 
 def read_moments(text: str) -> Array:
-    """Dates and times without a zone, one a line, in s since 1970-01-01; NaN for anything else."""
-    cells = text.split("\n")
+    """Dates and times without a zone, one a line, in s since 1970-01-01; NaN for anything else, and for a date that no
+    plant has logged."""
+    moments = _moments(text.split("\n"))
+    return np.where((moments >= FIRST_MOMENT) & (moments < LAST_MOMENT), moments, math.nan)
+
+
+def _moments(cells: list[str]) -> Array:
     if all(map(DATE_TIME.fullmatch, cells)):
         try:
             return np.array(cells, dtype="datetime64[s]").astype(float)
@@ -85,7 +92,7 @@ def _moment(cell: str) -> float:
     try:
         if DATE_TIME.fullmatch(cell):
             return (datetime.datetime.fromisoformat(cell) - EPOCH).total_seconds()
-    except ValueError:
+    except (ValueError, OverflowError):
         pass
     return math.nan
 

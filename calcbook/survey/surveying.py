@@ -8,10 +8,10 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from calcbook.calcfile.empty import is_empty
 from calcbook.calcfile.survey import Survey
 from calcbook.chain.checks import evaluate_check
 from calcbook.chain.outcome import CheckResult, Result, Solved
-from calcbook.chain.scope import EMPTY_SOURCES
 from calcbook.chain.solve import Solution
 from calcbook.chain.survey_outcome import (
     CycleRow,
@@ -477,7 +477,7 @@ class _Survey:
         without_source = [
             OpenItem(f"survey/{name}/source", "source", f"What the survey states under {name} has no source.")
             for name, source in self.survey.sources.items()
-            if source.strip(" .").casefold() in EMPTY_SOURCES
+            if is_empty(source)
         ]
         return (*without_source, *self.row_items(outcome), *self.fit_items(outcome))
 

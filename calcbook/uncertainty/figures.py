@@ -24,6 +24,9 @@ from calcbook.uncertainty.distributions import (
     positive,
 )
 
+# Of a value and its tolerance added up, relative.
+ROUNDING = 1e-12
+
 
 @dataclass(frozen=True, slots=True)
 class Uncertain:
@@ -104,6 +107,17 @@ def _stated(
             f"the tolerance of `{given.symbol}` takes it below what it can be: its {item.kind.name} is {must}",
             found=f"{given.value.text} with {tolerance.text}",
             expected="a tolerance smaller than the value",
+        )
+        return None
+    most = item.kind.bounds[1]
+    if item.value + width > most * (1.0 + ROUNDING):
+        collector.add(
+            "tolerance-beyond-value",
+            tolerance.place,
+            f"the tolerance of `{given.symbol}` takes it beyond what it can be: its {item.kind.name} is"
+            f" {item.kind.most} or less",
+            found=f"{given.value.text} with {tolerance.text}",
+            expected="a tolerance that ends there",
         )
         return None
     rule = _rule(tolerance)

@@ -87,6 +87,36 @@ def test_a_link_that_leads_nowhere_is_a_fault(book: Path, link: str, code: str) 
     assert code in {fault.code for fault in caught.value.faults}
 
 
+def test_a_link_takes_nothing_from_an_issued_copy_that_was_altered(tmp_path: Path) -> None:
+    """The issued copy of the example book, with one digit of its results changed, or another file added."""
+    shutil.copytree(ROOT / "calcs", tmp_path / "calcs")
+    shutil.copytree(ROOT / "output" / "WC-101", tmp_path / "output" / "WC-101")
+    fed, results = tmp_path / "calcs" / "wc-102.yaml", tmp_path / "output/WC-101/issued/A/results.json"
+    before = solve_file(fed).base.results["U_service"].value
+    text = results.read_text(encoding="utf-8")
+    results.write_text(text.replace('"value": 1', '"value": 2', 1), encoding="utf-8")
+    with pytest.raises(Faults) as caught:
+        solve_file(fed)
+    (fault,) = caught.value.faults
+    assert (fault.code, fault.place.line) == ("issued-altered", 21)
+    assert "results.json: the file was altered after the issue" in fault.found
+    results.write_text(text, encoding="utf-8")
+    assert solve_file(fed).base.results["U_service"].value == before
+
+
+def test_calculations_that_take_from_each_other_in_a_long_row_are_told(tmp_path: Path) -> None:
+    count = 40
+    for number in range(count):
+        text = GOOD.replace("number: WC-101", f"number: S-{number}")
+        if number + 1 < count:
+            text = text.replace(HOT, FED.replace("S-1,", f"S-{number + 1},"))
+        (tmp_path / f"s{number:02d}.yaml").write_text(text, encoding="utf-8")
+    with pytest.raises(Faults) as caught:
+        solve_file(tmp_path / "s00.yaml")
+    assert {fault.code for fault in caught.value.faults} == {"link-too-deep"}
+    assert solve_file(tmp_path / f"s{count - 3}.yaml", for_record=False).base.results["U_service"].value > 0.0
+
+
 def test_a_circle_over_two_calculations_is_told(book: Path) -> None:
     source = book / "source.yaml"
     back = "T_hot:  {from: {calculation: F-1, result: T inside surface service}, is: surface of the other}"

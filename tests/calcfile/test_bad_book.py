@@ -59,3 +59,20 @@ def test_a_book_that_is_no_mapping(folder: Path, text: str) -> None:
 def test_without_a_book_the_defaults_hold(folder: Path) -> None:
     settings = read_settings(folder)
     assert (settings.revisions, settings.open_items) == ("letters", "refuse final issue")
+
+
+@pytest.mark.parametrize(
+    ("line", "expected"),
+    [
+        ("site pressure: {value: 1.013 barg, source: LM-SD-01}", "an absolute pressure from 40 to 115 kPa"),
+        ("site pressure: {value: 101.3 MPa, source: LM-SD-01}", "an absolute pressure from 40 to 115 kPa"),
+        ("site pressure: {value: 20 degC, source: LM-SD-01}", "an absolute pressure from 40 to 115 kPa"),
+        ("limits: {excess surface: {value: 40, source: rule 9}}", "a share from 0 to 200 %"),
+        ("limits: {surface temperature: {value: 60 K, source: rule 9}}", "a temperature from 20 to 200 degC"),
+    ],
+)
+def test_a_setting_that_no_book_has_is_refused(folder: Path, line: str, expected: str) -> None:
+    text = printed(f"book: Works\n{line}\n")
+    assert folder.is_dir()
+    assert text.startswith("book.yaml:2:") and "number-out-of-proportion" in text
+    assert text.endswith(f"expected: {expected}")

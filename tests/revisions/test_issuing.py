@@ -17,10 +17,10 @@ from calcbook.record import digest_of
 from calcbook.revisions.issuing import check_seal, issue
 from calcbook.revisions.lifecycle import lifecycle_of
 from calcbook.revisions.revising import revise
-from calcbook.revisions.seals import Issued, check_seals, issued_copies, read_seal, revision_order, seal_text
 from calcbook.revisions.sides import load_issued, load_side, side_of
 from calcbook.revisions.signing import sign
 from calcbook.revisions.signoffs import signoffs_path
+from calcbook.seals import Issued, check_seals, issued_copies, read_seal, revision_order, seal_text
 
 
 @pytest.fixture(scope="module")

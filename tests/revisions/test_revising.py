@@ -15,8 +15,8 @@ from calcbook.faults import Faults
 from calcbook.revisions.issuing import issue
 from calcbook.revisions.lifecycle import lifecycle_of
 from calcbook.revisions.revising import next_revision, revise
-from calcbook.revisions.seals import revision_order
 from calcbook.revisions.signing import declare_void
+from calcbook.seals import revision_order
 
 LINE = "  - {revision: B, date: 2026-11-20, reason: to be written}"
 

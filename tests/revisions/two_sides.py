@@ -7,8 +7,8 @@ import re
 import tempfile
 from pathlib import Path
 
-from calcbook.revisions.seals import Issued, seal_text, sha256_of
 from calcbook.revisions.sides import Side, load_side
+from calcbook.seals import Issued, seal_text, sha256_of
 
 EXAMPLES = Path(__file__).resolve().parents[2] / "calcs"
 

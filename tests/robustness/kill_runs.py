@@ -26,7 +26,7 @@ sys.path.insert(0, str(Path(__file__).resolve().parents[1] / "revisions"))
 
 from signed_book import change, make_book, sign_all, sign_checked, sign_prepared
 
-from calcbook.revisions.seals import check_seals
+from calcbook.seals import check_seals
 
 ROOT = Path(__file__).resolve().parents[2]
 SCRATCH = (".writing-", ".issuing-")
