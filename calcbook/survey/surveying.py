@@ -43,7 +43,7 @@ FEWEST_FREE = 5
 ALLOWANCE = "allowance_fitted"
 ONE_SIDED = "not applied: only one stream shows its heat"
 # Beyond this part of all rows it is not single cells that cannot be read.
-MANY_UNREADABLE = 0.5
+MOST = 0.5
 # How far beyond the longest time since a cleaning in the rows a model may be used without a caution.
 REACH, PERIOD = "1.5", "t_data"
 
@@ -482,15 +482,18 @@ class _Survey:
         return (*without_source, *self.row_items(outcome), *self.fit_items(outcome))
 
     def row_items(self, outcome: SurveyOutcome) -> tuple[OpenItem, ...]:
-        """A history most of whose rows cannot be read: its columns may not be what the mapping takes them for."""
-        count = next(rule.count for rule in outcome.rules if rule.id == UNREADABLE)
-        if not count > MANY_UNREADABLE * outcome.rows:
-            return ()
-        text = (
-            f"{count} of {outcome.rows} rows of the history cannot be read: columns, decimal marks or times may be"
-            " others than the survey states."
-        )
-        return (OpenItem("survey/unreadable rows", "check", text),)
+        """A history most of whose rows cannot be read, or are rejected: its columns may not be what the mapping takes
+        them for."""
+        unreadable = next(rule.count for rule in outcome.rules if rule.id == UNREADABLE)
+        rejected = sum(rule.count for rule in outcome.rules)
+        for name, count, words in (
+            ("unreadable", unreadable, "cannot be read: columns, decimal marks or times"),
+            ("rejected", rejected, "are rejected: columns, units, flows or the rules themselves"),
+        ):
+            if count > MOST * outcome.rows:
+                text = f"{count} of {outcome.rows} rows of the history {words} may be others than the survey states."
+                return (OpenItem(f"survey/{name} rows", "check", text),)
+        return ()
 
     def limit_items(self, checks: tuple[CheckResult, ...]) -> tuple[OpenItem, ...]:
         """Stop and range limits of the survey that do not hold; the rules and the model are the cure."""

@@ -89,6 +89,21 @@ def test_a_history_that_mostly_cannot_be_read_is_an_open_item(
         assert not texts or texts[0].startswith(f"{count} of {len(rows)} rows of the history cannot be read")
 
 
+def test_a_history_most_of_whose_rows_are_rejected_is_an_open_item(
+    tmp_path: Path, solved: Solved, whole: list[list[str]]
+) -> None:
+    """Both temperatures of the hot stream swapped: a heat balance that does not close, row by row."""
+    for swapped, told in ((0.4, False), (0.6, True)):
+        rows = [list(row) for row in whole]
+        order = [*range(1, len(rows), 2), *range(0, len(rows), 2)]
+        for place in order[: round(swapped * len(rows))]:
+            rows[place][1], rows[place][2] = rows[place][2], rows[place][1]
+        answer = surveyed_alone(tmp_path, solved, rows, SPOILED_SURVEY)
+        texts = [item.text for item in answer.open_items if item.id == "survey/rejected rows"]
+        assert bool(texts) == told
+        assert not texts or "rows of the history are rejected" in texts[0]
+
+
 @pytest.mark.parametrize("seed", range(6))
 def test_no_row_is_dropped_in_silence(outcome_of: Outcomes, whole: list[list[str]], seed: int) -> None:
     draw = np.random.default_rng(seed)

@@ -81,6 +81,14 @@ def test_every_sample_is_the_closed_form(tmp_path: Path) -> None:
     assert service.limits == (("criterion 1", 350.0),)
 
 
+def test_what_is_counted_is_swept_by_whole_numbers(tmp_path: Path) -> None:
+    text = HOT.replace("parallel: {value: 40, source: test}", "parallel: N").replace(
+        "    givens:\n", "    givens:\n      N: {value: 40, is: tubes, source: test}\n"
+    )
+    found = sweep_in(solved_of(tmp_path, text + "    sweep: {N: {from: 1, to: 12, steps: 8}}\n"))
+    assert found.axes[0].figures == (1.0, 3.0, 4.0, 6.0, 7.0, 9.0, 10.0, 12.0)
+
+
 def test_of_two_givens_the_second_runs_fastest(tmp_path: Path) -> None:
     found = sweep_in(solved_of(tmp_path, WALL + TWO))
     service, cleanliness = found.results
