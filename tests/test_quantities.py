@@ -608,8 +608,8 @@ def test_in_unit_and_back(kind: str, value: float) -> None:
         ("1.02", "emissivity", "1 or less"),
         ("90.1 deg", "chevron angle", "90 deg or less"),
         ("0.99", "enlargement", "1 or more"),
-        ("10.5", "baffles", "a whole number"),
-        ("4 %", "plugged tubes", "a whole number"),
+        ("10.5", "tubes", "a whole number"),
+        ("4.5", "tube passes", "a whole number"),
     ],
 )
 def test_a_quantity_beyond_its_definition(text: str, kind: str, expected: str) -> None:
@@ -624,7 +624,7 @@ def test_a_quantity_beyond_its_definition(text: str, kind: str, expected: str) -
         ("90 deg", "chevron angle"),
         ("1", "enlargement"),
         ("0", "emissivity"),
-        ("11", "baffles"),
+        ("11", "tubes"),
     ],
 )
 def test_a_quantity_at_the_end_of_its_definition(text: str, kind: str) -> None:

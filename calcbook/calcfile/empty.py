@@ -23,11 +23,10 @@ NOTHING = frozenset(
         "tobewritten",
     )
 )
-FEWEST_SIGNS = 2
 
 
 def is_empty(text: str) -> bool:
-    """Whether a text has fewer than two letters or digits, or is a word for what is still to come."""
+    """Whether a text has no letter or digit, or is a word for what is still to come."""
     plain = unicodedata.normalize("NFKC", text).casefold()
     signs = "".join(sign for sign in plain if sign.isalnum() and sign not in INVISIBLE)
-    return len(signs) < FEWEST_SIGNS or signs in NOTHING
+    return not signs or signs in NOTHING

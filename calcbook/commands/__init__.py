@@ -12,6 +12,7 @@ import importlib
 
 import click
 
+INTERRUPTED = 130
 COMMANDS = (
     "run",
     "watch",
@@ -40,6 +41,14 @@ class _Commands(click.Group):
             return None
         command: click.Command = importlib.import_module(f"calcbook.commands.{name}").command
         return command
+
+    def invoke(self, ctx: click.Context) -> object:
+        """As click has it, but an interrupt that no command answers itself ends with its own exit code."""
+        try:
+            return super().invoke(ctx)
+        except KeyboardInterrupt:
+            click.echo("interrupted", err=True)
+            raise click.exceptions.Exit(INTERRUPTED) from None
 
 
 @click.group(

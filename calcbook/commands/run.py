@@ -11,12 +11,13 @@ import click
 
 from calcbook.book import Found, Outcome, find_calculations, run_all
 from calcbook.book.mistakes import MISTAKE_ACTION
+from calcbook.commands import INTERRUPTED
 from calcbook.commands.options import output_option
 from calcbook.faults import Collector, Faults
 
 COLUMNS = ("number", "revision", "U clean", "U service", "open items")
 PROGRESS_FROM = 5
-FAULT, NOT_CONVERGED, MISTAKE, INTERRUPTED = 2, 3, 4, 130
+FAULT, NOT_CONVERGED, MISTAKE = 2, 3, 4
 
 
 @click.command("run", short_help="Calculate files or folders and write their records.")

@@ -5,6 +5,7 @@ from __future__ import annotations
 import json
 from pathlib import Path
 
+import click
 import pytest
 from click.testing import CliRunner, Result
 
@@ -140,3 +141,19 @@ def test_help_teaches_and_lists_every_command() -> None:
     text = invoke("--help").stdout
     for name in ("run", "new", "library", "verify", "schema"):
         assert name in text
+
+
+@pytest.mark.parametrize("name", ["audit", "verify", "compare", "recall", "run"])
+def test_an_interrupt_ends_every_command_with_its_own_exit_code(
+    name: str, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    def interrupted(**_: object) -> None:
+        raise KeyboardInterrupt
+
+    command = main.get_command(click.Context(main), name)
+    assert command is not None
+    monkeypatch.setattr(command, "callback", interrupted)
+    words = [] if name == "verify" else [str(Path(__file__))]
+    words += ["--card", "gnielinski-1976"] if name == "recall" else []
+    finished = CliRunner().invoke(main, [name, *words])
+    assert (finished.exit_code, finished.stderr) == (130, "interrupted\n")
