@@ -17,8 +17,8 @@ from pathlib import Path
 from calcbook.calcfile.links import CURRENT, Link, LinkText
 from calcbook.documents import Mapping as MappingNode
 from calcbook.documents import read_file
-from calcbook.faults import Fault, Faults, nearest_names, shown
-from calcbook.seals import FINAL, ISSUED, RESULTS, check_seal, read_seal
+from calcbook.faults import Fault, Faults, nearest_names
+from calcbook.seals import FINAL, ISSUED, RESULTS, check_seal, issued_altered, read_seal
 
 NUMBER_LINE = re.compile(r"^\s*(?:calculation:\s*\{.*?)?number:\s*[\"']?([A-Za-z0-9_.-]+)", re.MULTILINE)
 DIGITS = 10
@@ -83,14 +83,7 @@ class Links:
                 ", ".join(self._issued(text.calculation)) or "an issued revision",
             ) from None
         if altered:
-            found = "; ".join(f"{finding.file}: {finding.text}" for finding in altered)
-            raise _fault(
-                "issued-altered",
-                text,
-                f"revision {text.revision} of {text.calculation} is not what was issued",
-                shown(found, 200),
-                "the copy as it was issued",
-            )
+            raise Faults([issued_altered(altered, text.place, text.calculation, text.revision)])
         table = {
             name: (item["value"], item["unit"])
             for name, item in results.items()

@@ -9,7 +9,7 @@ from collections.abc import Mapping
 from pathlib import Path
 from typing import NamedTuple
 
-from calcbook.faults import Fault, Faults, Place
+from calcbook.faults import Fault, Faults, Place, shown
 
 SEAL_NAME, SEAL = "seal.json", "calcbook-seal-1"
 ISSUED = "issued"
@@ -173,6 +173,13 @@ def check_seal(folder: Path) -> tuple[SealFinding, ...]:
         elif sha256_of((folder / name).read_bytes()) != digest:
             findings.append(SealFinding(name, "the file was altered after the issue"))
     return tuple(findings)
+
+
+def issued_altered(findings: tuple[SealFinding, ...], place: Place, number: str, revision: str) -> Fault:
+    """The fault of an issued copy that is not what was frozen, at the place where it is wanted."""
+    found = "; ".join(f"{finding.file}: {finding.text}" for finding in findings)
+    message = f"revision {revision} of {number} is not what was issued"
+    return Fault("issued-altered", place, message, shown(found, 200), "the copy as it was issued")
 
 
 def check_seals(output: Path, number: str) -> tuple[tuple[str, SealFinding], ...]:

@@ -365,6 +365,13 @@ class Calculation:
     meaning: object
     place: Place
 
+    def on_side(self, side: str) -> tuple[Term, ...]:
+        """The terms between a fluid and the wall, of the side (inside, outside) that is named; none without a wall."""
+        walls = [place for place, term in enumerate(self.resistances) if term.kind == "wall"]
+        if not walls:
+            return ()
+        return self.resistances[: walls[0]] if side == "inside" else self.resistances[walls[-1] + 1 :]
+
     def criterion(self, name: str) -> Criterion:
         """The acceptance criterion of a number, as `criterion 2`."""
         return self.acceptance[int(name.removeprefix("criterion ")) - 1]

@@ -54,7 +54,7 @@ from calcbook.chain.pressure import (
     pressure_notes,
 )
 from calcbook.chain.sensitivity import derivatives
-from calcbook.chain.solve import Solution, chosen, closed, halves_of, solve, solve_both
+from calcbook.chain.solve import Solution, chosen, closed, conditions_of, solve, solve_both
 from calcbook.chain.specified import OWNER as SPECIFIED
 from calcbook.chain.types import (
     CLEAN,
@@ -199,12 +199,9 @@ class _Analysis:
             {key: row if (row != row[0]).any() else row[:1].reshape(()) for key, row in rows.items()},
         )
         evaluate_pressure_drops(self.chain, both)
-        halves = halves_of(both.converged.size // 2)
+        solutions = conditions_of(both)
         return {
-            name: {
-                condition: replace(both.sample(half.start + number), condition=condition)
-                for condition, half in halves.items()
-            }
+            name: {condition: solution.sample(number) for condition, solution in solutions.items()}
             for number, name in enumerate(self.inputs)
         }
 

@@ -1013,12 +1013,11 @@ class _Builder:
 
     def _narrowing(self, side: str) -> list[Term]:
         """The fouling terms on a side whose deposit narrows the flow."""
-        terms = self.calculation.resistances
-        walls = [index for index, term in enumerate(terms) if term.kind == "wall"]
-        if not walls:
-            return []
-        part = terms[: walls[0]] if side == "inside" else terms[walls[-1] :]
-        return [term for term in part if term.deposit is not None and term.deposit.narrows]
+        return [
+            term
+            for term in self.calculation.on_side(side)
+            if term.deposit is not None and term.deposit.narrows
+        ]
 
     def _check_with(self, term: Term, situation: Situation, film: FilmScope) -> None:
         """Every entry of `with:` must be asked for by the situation or one of its methods."""

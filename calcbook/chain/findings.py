@@ -124,12 +124,14 @@ def _check_flows(chain: Chain, values: Mapping[str, Any], collector: Collector, 
 
 def _check_derived(chain: Chain, values: Mapping[str, Any], collector: Collector, case: str) -> None:
     """That every derived quantity has a value, and one that a quantity of its kind can have."""
-    moves = _moves_of_derived(chain, values)
+    kelvin = vocabulary()["temperature"].dimension
+    has_temperatures = any(kind.dimension == kelvin for kind in chain.derived_kinds.values())
+    moves = _moves_of_derived(chain, values) if has_temperatures else {}
     for symbol, item in chain.calculation.derived.items():
         if f"derived/{symbol}" not in values:
             continue
         kind, value = chain.derived_kinds.get(symbol), float(values[f"derived/{symbol}"])
-        if kind is not None and kind.dimension == vocabulary()["temperature"].dimension:
+        if kind is not None and kind.dimension == kelvin:
             _check_scale(item, kind, moves[symbol], collector, case)
         if not _has_size(value) or (kind is not None and not kind.allows(value)):
             what = f"the {f'{kind.name} ' if kind is not None else ''}{symbol} that is derived here"
@@ -673,9 +675,7 @@ def _of_other_methods(chain: Chain, solutions: Mapping[str, Solution]) -> set[st
             kept = {symbol for item in acting for symbol in _needed(item)}
             if branch.situation is not None:
                 kept |= {need.symbol for need in branch.situation.needs}
-            asked = {
-                symbol for item in (*branch.candidates, *branch.alternatives) for symbol in _needed(item)
-            }
+            asked = {symbol for item in branch.candidates for symbol in _needed(item)}
             unused |= {f"{branch.name}/{symbol}" for symbol in asked - kept}
     return unused
 

@@ -28,6 +28,7 @@ from calcbook.seals import (
     RESULTS,
     SEAL_NAME,
     check_seal,
+    issued_altered,
     issued_copies,
     issued_folder,
     read_seal,
@@ -118,11 +119,7 @@ def load_issued(number: str, revision: str, output: Path) -> Side:
     called = f"{number}@{revision}"
     altered = check_seal(folder) if (folder / CALCULATION).is_file() else ()
     if altered:
-        words = "; ".join(f"{finding.file}: {finding.text}" for finding in altered)
-        message = f"revision {revision} of {number} is not what was issued"
-        raise Faults(
-            [Fault("issued-altered", Place(called), message, shown(words, 200), "the copy as it was issued")]
-        )
+        raise Faults([issued_altered(altered, Place(called), number, revision)])
     if not (folder / CALCULATION).is_file():
         names = [copy.revision for copy in issued_copies(output, number)]
         raise Faults(

@@ -132,13 +132,8 @@ def _pressure_rows(page: Page) -> list[tuple[str, str, str]]:
 
 def _deposit_words(page: Page, side: str, condition: str) -> str:
     """What a pressure drop in service leaves out of the deposits on its side of the wall."""
-    terms = page.calculation.resistances
-    walls = [place for place, term in enumerate(terms) if term.kind == "wall"]
-    if condition != "service" or not walls:
-        return ""
-    near = terms[: walls[0]] if side == "inside" else terms[walls[-1] + 1 :]
-    deposits = [term.deposit for term in near if term.kind == "fouling"]
-    if not deposits:
+    deposits = [term.deposit for term in page.calculation.on_side(side) if term.kind == "fouling"]
+    if condition != "service" or not deposits:
         return ""
     if any(deposit is not None and deposit.narrows for deposit in deposits):
         return "; the deposit narrows the flow, its roughness is not counted"
