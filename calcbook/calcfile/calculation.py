@@ -365,6 +365,11 @@ class Calculation:
     meaning: object
     place: Place
 
+    @property
+    def every_term(self) -> tuple[Term, ...]:
+        """The terms of the resistance list, each followed by those that stand side by side in it."""
+        return tuple(one for term in self.resistances for one in (term, *term.branches))
+
     def on_side(self, side: str) -> tuple[Term, ...]:
         """The terms between a fluid and the wall, of the side (inside, outside) that is named; none without a wall."""
         walls = [place for place, term in enumerate(self.resistances) if term.kind == "wall"]

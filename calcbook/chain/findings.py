@@ -198,8 +198,7 @@ def _check_scale(item: Derived, kind: QuantityKind, moves: float, collector: Col
 
 def _check_factors(chain: Chain, values: Mapping[str, Any], collector: Collector, case: str) -> None:
     """That what a stated coefficient scales with is a finite factor above zero."""
-    terms = [one for term in chain.calculation.resistances for one in (term, *term.branches)]
-    for term in (term for term in terms if term.scales_with is not None):
+    for term in (term for term in chain.calculation.every_term if term.scales_with is not None):
         known = {**values}
         steps = [step for step in film_steps(chain) if step.id == f"{term.name}/factor"]
         run([step for step in steps if known.keys() >= set(step.inputs.values())], known)

@@ -6,6 +6,7 @@ from calcbook.calcfile.calculation import Value
 from calcbook.formulas.names import written_name
 from calcbook.record.blocks import Block, Heading, Paragraph, Table
 from calcbook.record.page import HOUSE_METHOD, Page, reference_id
+from calcbook.record.sections.inputs import stated_choices
 from calcbook.record.sections.review import can_be_touched
 
 
@@ -49,6 +50,8 @@ def _documents(page: Page) -> list[Block]:
     for item in page.chain.inputs.values():
         name = written_name(item.symbol) if item.is_given else item.title
         found.setdefault(item.source, []).append(name)
+    for title, choice in stated_choices(page):
+        found.setdefault(choice.source, []).append(title)
     for case, changes in page.calculation.cases.items():
         for symbol, given in changes.items():
             found.setdefault(given.source, []).append(f"{written_name(symbol)} in case {case}")

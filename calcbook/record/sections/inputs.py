@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Iterator
 
-from calcbook.calcfile.calculation import Assumption, FluidText, Given, Term
+from calcbook.calcfile.calculation import Assumption, FluidText, Given, Value
 from calcbook.chain.films import SATURATION_FIGURES
 from calcbook.chain.fluids import BoilingOperation, FixedOperation, PropertyOperation
 from calcbook.chain.outcome import PropertyRow
@@ -46,7 +46,9 @@ def givens(page: Page) -> list[Block]:
     rows = tuple(_given_row(given, page) for given in page.calculation.givens.values())
     blocks.append(Table(columns, rows) if rows else Paragraph("The file has no givens."))
     rows = tuple(_literal_row(item) for item in page.chain.inputs.values() if not item.is_given)
-    rows += tuple(row for term in page.calculation.resistances for row in _choice_rows(term, page))
+    rows += tuple(
+        (title, value.text, "a choice", value.source or "no source") for title, value in stated_choices(page)
+    )
     if rows:
         blocks.append(Heading(3, "Figures stated where they are used"))
         blocks.append(Table(("Figure", "Value as written", "Value in SI", "Source"), rows))
@@ -115,14 +117,13 @@ def _literal_row(item: Input) -> tuple[str, ...]:
     return (item.title, item.text, si_text(item), item.source or "no source")
 
 
-def _choice_rows(term: Term, page: Page) -> Iterator[tuple[str, ...]]:
-    """The choices that a term states for its methods (an impeller, an arrangement of tubes)."""
+def stated_choices(page: Page) -> Iterator[tuple[str, Value]]:
+    """The choices that terms state for their methods (an impeller, an arrangement of tubes), each with its title."""
     figures = {*page.calculation.givens, *page.calculation.derived}
-    for key, value in term.with_values.items():
-        if value.symbol not in figures and f"{term.name}/with {key}" not in page.chain.inputs:
-            yield (f"with {key} of {term.name}", value.text, "a choice", value.source or "no source")
-    for branch in term.branches:
-        yield from _choice_rows(branch, page)
+    for term in page.calculation.every_term:
+        for key, value in term.with_values.items():
+            if value.symbol not in figures and f"{term.name}/with {key}" not in page.chain.inputs:
+                yield f"with {key} of {term.name}", value
 
 
 def si_text(item: Input) -> str:
