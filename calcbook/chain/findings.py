@@ -466,7 +466,8 @@ def wall_limits(chain: Chain, solution: Solution) -> list[WallLimit]:
         return found
     for group in (chain.inner, chain.outer):
         for branch in group.branches:
-            if branch.kind == "film" and branch.stream:
+            state = chain.streams.get(branch.stream)
+            if state is not None and (branch.kind == "film" or _is_of_one_phase(branch, state)):
                 found += _film_limits(chain, solution, group, branch)
     for layer, gap in gaps(chain):
         sides = [solution.figure(name) for name in (layer.first_temperature, layer.second_temperature)]
@@ -474,16 +475,30 @@ def wall_limits(chain: Chain, solution: Solution) -> list[WallLimit]:
     return found
 
 
+def _is_of_one_phase(branch: Branch, state: StreamState) -> bool:
+    """Whether a stated coefficient is that of a stream of one phase whose state is known."""
+    return branch.kind == "stated" and bool(state.pressure) and not state.is_saturated
+
+
 def _film_limits(chain: Chain, solution: Solution, group: Group, branch: Branch) -> list[WallLimit]:
     surface = solution.figure(chain.results.get(f"T root {group.name}", group.surface_temperature))
     phase_change = branch.situation.changes_phase if branch.situation is not None else ""
-    return _phase_limits(branch.name, chain.streams[branch.stream], phase_change, [surface], solution)
+    state, stated = chain.streams[branch.stream], branch.kind == "stated"
+    return _phase_limits(branch.name, state, phase_change, [surface], solution, stated)
 
 
 def _phase_limits(
-    owner: str, state: StreamState, phase_change: str, sides: list[Array], solution: Solution
+    owner: str,
+    state: StreamState,
+    phase_change: str,
+    sides: list[Array],
+    solution: Solution,
+    stated: bool = False,
 ) -> list[WallLimit]:
-    """The phase of a fluid at the surfaces that it touches: at the hottest against boiling, else at the coldest."""
+    """The phase of a fluid at the surfaces that it touches: at the hottest against boiling, else at the coldest.
+
+    A ``stated`` coefficient of a gas may be that of its condensing.
+    """
     phases, place = stream_phases(state, solution.values)
     facts = [_wall_facts(state, *figures) for figures in phases]
     hottest, coldest = np.maximum.reduce(sides), np.minimum.reduce(sides)
@@ -499,12 +514,13 @@ def _phase_limits(
             )
 
     changing = not phase_change
+    what = "stated coefficient" if stated else "method"
     add(
         "boils",
         "T_s < T_sat",
         "boiling",
         "<",
-        "the method is for a liquid without boiling at the surface",
+        f"the {what} is for a liquid without boiling at the surface",
         [one is not None and one.has_vapour and changing and one.phase == "liquid" for one in facts],
     )
     add(
@@ -517,6 +533,7 @@ def _phase_limits(
             one is not None
             and one.has_vapour
             and changing
+            and not stated
             and one.phase == "gas"
             and not math.isnan(one.boiling)
             for one in facts
@@ -527,7 +544,7 @@ def _phase_limits(
         "T_s > T_freeze",
         "freezing",
         ">",
-        "the method is for a liquid that does not freeze at the surface",
+        f"the {what} is for a liquid that does not freeze at the surface",
         [
             one is not None and (one.phase == "liquid" or bool(phase_change)) and not math.isnan(one.freezing)
             for one in facts

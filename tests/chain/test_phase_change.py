@@ -207,6 +207,44 @@ def test_a_film_that_is_meant_to_change_phase_is_not_cried_at(tmp_path: Path) ->
     assert not any(name.endswith(("condenses", "boils")) for name in states)
 
 
+def stated_film(stream: str, inside: str = "130 degC", bulk: str = "60 degC") -> str:
+    """A plate held at a temperature from inside, with a stated coefficient of a known stream outside."""
+    return (
+        givens(W="1 m", t="1 mm", k_w="50 W/(m K)", p="1 atm", T_i=inside, T=bulk, h="2000 W/(m^2 K)")
+        + f"""\
+streams:
+  outer: {{{stream}}}
+geometry: {{shape: plane, height: W, width: W}}
+resistances:
+  - {{name: heater, kind: film, coefficient: {{value: {IDEAL}, source: test}}, temperature: T_i}}
+  - {{name: wall, kind: wall, conductivity: k_w, thickness: t}}
+  - {{name: film, kind: film, stream: outer, coefficient: h}}
+report: {{U on: outside}}
+"""
+    )
+
+
+def test_the_wall_of_a_stated_film_is_held_against_boiling_where_its_state_is_known(tmp_path: Path) -> None:
+    """The surface stands near 127 degC; water boils at 99.97 degC at 1 atm (steam tables by IAPWS-95)."""
+    known = solved(tmp_path, stated_film("fluid: water, temperature: T, pressure: p"))
+    of_service = {check.id: check for check in known.cases[0].checks if check.condition == "service"}
+    limit = of_service["film / wall phase / boils"]
+    assert (limit.state, limit.level) == ("outside", "range")
+    assert limit.limit == "< 99.97 °C"
+    assert limit.value == pytest.approx(
+        130.0 + 273.15 - 70.0 * (2000.0 / 50e3) / (1.0 + 2000.0 / 50e3), rel=1e-6
+    )
+    assert "film / wall phase / freezes" in checks(known)
+    unknown = solved(tmp_path, stated_film("fluid: water, temperature: T"))
+    assert not any("wall phase" in name for name in checks(unknown))
+
+
+def test_a_stated_coefficient_may_be_that_of_condensing(tmp_path: Path) -> None:
+    vapour = stated_film("fluid: water, phase: gas, temperature: T, pressure: p", "70 degC", "120 degC")
+    states = checks(solved(tmp_path, vapour))
+    assert not any(name.endswith("condenses") for name in states)
+
+
 def test_a_pure_vapour_at_rest_is_assumed_and_said(tmp_path: Path) -> None:
     answer = solved(tmp_path, plate("2 m"))
     said = {item.id: item.text for item in answer.cases[0].assumptions}
