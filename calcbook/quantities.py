@@ -249,6 +249,10 @@ class Quantity(NamedTuple):
     dimension: Dimension
     reading: str = ""
 
+    def on_base_of(self, other: Quantity) -> bool:
+        """Whether both count from one zero: both gauge pressures, or neither of them."""
+        return (self.reading == "gauge") == (other.reading == "gauge")
+
 
 class Tolerance(NamedTuple):
     """A half-width: in SI units, or as a fraction of the value when ``relative``."""

@@ -1334,7 +1334,7 @@ class Reader:
                 expected=f"a unit like that of {base.value.text}",
             )
             return None
-        if "gauge" in (before.reading, after.reading) and before.reading != after.reading:
+        if not after.on_base_of(before):
             self.collector.add(
                 "unit-dimension",
                 given.value.place,

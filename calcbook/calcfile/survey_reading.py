@@ -291,8 +291,7 @@ class _Reader:
         """Whether a unit is one of the given's own quantity: a point of a scale for a temperature."""
         base = given.value.quantity
         assert base is not None
-        gauge = "gauge" in (quantity.reading, base.reading) and quantity.reading != base.reading
-        if quantity.dimension == base.dimension and not gauge:
+        if quantity.dimension == base.dimension and quantity.on_base_of(base):
             return True
         self.collector.add(
             "unit-dimension",

@@ -129,4 +129,13 @@ def _end(
             expected=f"a figure in {unit_display(si_unit(given.value.quantity.dimension)) or '1'}",
         )
         return None
+    if not found.on_base_of(given.value.quantity):
+        collector.add(
+            "unit-dimension",
+            place,
+            f"`{given.symbol}` is swept on another pressure base",
+            found=shown(node.text),
+            expected=f"gauge or absolute as in {given.value.text}",
+        )
+        return None
     return found, place

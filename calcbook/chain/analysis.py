@@ -70,11 +70,11 @@ from calcbook.chain.types import (
     OpenItem,
     StreamState,
 )
-from calcbook.faults import Collector, nearest_names, shown
+from calcbook.faults import Collector, Place, nearest_names, shown
 from calcbook.library import vocabulary
 from calcbook.library.operations import run
 from calcbook.properties import SATURATION_FRACTION
-from calcbook.quantities import QuantityFault, QuantityKind, as_kind
+from calcbook.quantities import Quantity, QuantityFault, QuantityKind, as_kind
 
 Array = np.ndarray
 CONTROLLING_SHARE = 0.5
@@ -842,6 +842,9 @@ class _Analysis:
                     expected=kind.unit,
                 )
                 return None
+            given = self.chain.calculation.givens.get(value.symbol)
+            if given is not None and self._read_limit(given.value.quantity, kind, value.place) is None:
+                return None
             return solution.figure(name)
         assert value.quantity is not None, "a limit is a symbol or a quantity"
         if kind.name == "ratio" and not value.quantity.unit_text and value.quantity.value > LARGEST_SHARE:
@@ -854,12 +857,18 @@ class _Analysis:
                 nearest=(f"{value.text} %",),
             )
             return None
+        limit = self._read_limit(value.quantity, kind, value.place)
+        return np.asarray(limit) if limit is not None else None
+
+    def _read_limit(self, quantity: Quantity | None, kind: QuantityKind, place: Place) -> float | None:
+        """The SI value of a limit, read as the quantity that it limits; None after a fault."""
+        assert quantity is not None, "a figure of the file has a value here"
         try:
-            return np.asarray(as_kind(value.quantity, kind).value)
+            return as_kind(quantity, kind).value
         except QuantityFault as error:
             self.collector.add(
                 error.code,
-                value.place,
+                place,
                 error.message,
                 found=error.found,
                 expected=error.expected,

@@ -338,11 +338,8 @@ class _Builder:
     def _derived_step(self, item: Derived) -> None:
         inputs = {}
         for symbol in item.relation.symbols:
-            if symbol in self.calculation.givens:
-                inputs[symbol] = f"given/{symbol}"
-            elif symbol in self.calculation.derived:
-                inputs[symbol] = f"derived/{symbol}"
-            else:
+            inputs[symbol] = self.scope.in_relation(symbol, "derived", f"derived {item.symbol}")
+            if not inputs[symbol]:
                 known = [*self.calculation.givens, *self.calculation.derived]
                 self.collector.add(
                     "symbol-unknown",
@@ -353,7 +350,6 @@ class _Builder:
                     nearest=nearest_names(symbol, known),
                 )
                 return
-            self.scope.used_in.setdefault(symbol, []).append(f"derived {item.symbol}")
         if any(name not in self.scope.dimensions for name in inputs.values()):
             return
         self.scope.relation_step(
@@ -1132,15 +1128,8 @@ class _Builder:
     def _bind_givens(self, relation: Relation, term: Term, key: str) -> dict[str, str] | None:
         inputs = {}
         for symbol in relation.symbols:
-            name = next(
-                (
-                    f"{kind}/{symbol}"
-                    for kind in ("given", "derived")
-                    if f"{kind}/{symbol}" in self.scope.dimensions
-                ),
-                "",
-            )
-            if not name:
+            name = self.scope.in_relation(symbol, term.name, f"{term.name}, {key}")
+            if name not in self.scope.dimensions:
                 known = [*self.calculation.givens, *self.calculation.derived]
                 self.collector.add(
                     "symbol-unknown",
@@ -1151,7 +1140,6 @@ class _Builder:
                     nearest=nearest_names(symbol, known),
                 )
                 return None
-            self.scope.used_in.setdefault(symbol, []).append(f"{term.name}, {key}")
             inputs[symbol] = name
         return inputs
 
@@ -1181,9 +1169,7 @@ class _Builder:
                     found=value.text,
                 )
                 return ()
-            bounds[key] = self.scope.constant(
-                f"{term.name}/holds for {key}", value.quantity.value, value.quantity.dimension
-            )
+            bounds[key] = self.scope.above_site(value.quantity, f"{term.name}/holds for {key}", term.name)
         limit = Limit(
             "holds for",
             parse_expression("low <= x <= high"),
@@ -1203,12 +1189,8 @@ class _Builder:
         stream = self.streams.get(term.texts.get("stream", ""))
         if stream is not None and key in ("flow", "temperature", "pressure"):
             return getattr(stream, key)
-        name = next(
-            (f"{kind}/{key}" for kind in ("given", "derived") if f"{kind}/{key}" in self.scope.dimensions), ""
-        )
-        if name:
-            self.scope.used_in.setdefault(key, []).append(f"{term.name}, holds for")
-        return name
+        name = self.scope.in_relation(key, term.name, f"{term.name}, holds for")
+        return name if name in self.scope.dimensions else ""
 
     def _radiation(self, term: Term, group: str, shape: Shape) -> Branch | None:
         emissivity = self.scope.value(term.values.get("emissivity"), "emissivity", term.name, "emissivity")

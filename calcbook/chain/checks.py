@@ -293,13 +293,13 @@ def _bound(acceptance: Acceptance, result: CheckResult, collector: Collector) ->
             expected=f"a figure in {result.unit or '1'}",
         )
         return None
-    if unit_display(si_unit(quantity.dimension)) != result.unit:
+    if unit_display(si_unit(quantity.dimension)) != result.unit or quantity.reading == "gauge":
         collector.add(
             "unit-dimension",
             value.place,
-            "the bound has another dimension than the checked figure",
+            "the bound has another dimension than the checked figure, or counts from the site pressure",
             found=value.text,
-            expected=result.unit,
+            expected=f"{result.unit}, absolute" if result.unit == "Pa" else result.unit,
         )
         return None
     return quantity.value

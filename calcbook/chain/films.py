@@ -9,7 +9,7 @@ from calcbook.calcfile.calculation import Term, Value
 from calcbook.chain.fluids import FixedOperation, LiquidOperation, PropertyOperation
 from calcbook.chain.scope import Scope
 from calcbook.chain.types import Branch, Candidate, ChainCheck, ChainStep, ChoiceRow, StreamState
-from calcbook.faults import Collector, Faults, shown
+from calcbook.faults import Collector, Faults, nearest_names, shown
 from calcbook.formulas import Relation, parse_expression
 from calcbook.library import Library, Program
 from calcbook.library.cards import Limit, Method, Need, Situation
@@ -372,6 +372,7 @@ class FilmScope:
                 f"`{need.symbol}` cannot be `{shown(text)}`",
                 found=shown(text),
                 expected=" | ".join(need.one_of),
+                nearest=nearest_names(text, need.one_of),
             )
             return ""
         if stated is None:

@@ -186,11 +186,13 @@ def _check_scale(item: Derived, kind: QuantityKind, moves: float, collector: Col
         return
     whole = round(moves)
     if whole != wanted:
+        what = f"{f'case {case}: ' if case else ''}the {kind.name} {item.symbol} that is derived here"
         collector.add(
             "derived-not-possible",
             item.place,
-            f"{f'case {case}: ' if case else ''}the {kind.name} {item.symbol} that is derived here moves by {whole} K"
-            " where the temperatures it is taken from move by 1 K",
+            f"{what} stays where the temperatures it is taken from move by 1 K, as a difference does"
+            if whole == 0
+            else f"{what} moves by {whole} K where the temperatures it is taken from move by 1 K",
             found=item.relation.text.strip(),
             expected="a temperature, which moves by 1 K" if wanted else "a difference, which does not move",
         )

@@ -14,7 +14,15 @@ from calcbook.faults import Collector, Place, nearest_names, shown
 from calcbook.formulas import Relation, RelationFault, dimension
 from calcbook.library import vocabulary
 from calcbook.library.operations import Operation, RelationOperation
-from calcbook.quantities import DIMENSIONLESS, Dimension, QuantityFault, QuantityKind, as_kind, si_unit
+from calcbook.quantities import (
+    DIMENSIONLESS,
+    Dimension,
+    Quantity,
+    QuantityFault,
+    QuantityKind,
+    as_kind,
+    si_unit,
+)
 
 STANDARD_PRESSURE = 101_325.0
 
@@ -123,6 +131,25 @@ class Scope:
         """The id that stands for a figure with a fault: the chain goes on to its other faults with it."""
         return self.constant(f"unread {kind.name}", float("nan"), kind.dimension)
 
+    def in_relation(self, symbol: str, owner: str, use: str) -> str:
+        """The id of a given or derived figure as a relation takes it; empty where there is none of that name.
+
+        A gauge pressure stands in a relation as the absolute one, so that what is derived from it is absolute too.
+        """
+        given = self.calculation.givens.get(symbol)
+        name = f"given/{symbol}" if given is not None else f"derived/{symbol}"
+        if given is None and symbol not in self.calculation.derived:
+            return ""
+        self.used_in.setdefault(symbol, []).append(use)
+        if given is not None and given.value.quantity is not None and given.value.quantity.reading == "gauge":
+            return self._above_site(name, symbol, owner, symbol)
+        return name
+
+    def above_site(self, quantity: Quantity, name: str, owner: str) -> str:
+        """The id of a figure that bounds another, held as a constant; a gauge pressure as the absolute one."""
+        name = self.constant(name, quantity.value, quantity.dimension)
+        return self._above_site(name, "p", owner, owner) if quantity.reading == "gauge" else name
+
     def _named(self, value: Value, kind: QuantityKind, owner: str, key: str) -> str:
         symbol = value.symbol
         given = self.calculation.givens.get(symbol)
@@ -156,7 +183,22 @@ class Scope:
             )
             return ""
         self.kinds.setdefault(value.symbol, kind)
+        if kind.reading == "absolute":
+            self._say_parts(value.symbol, kind)
         return name
+
+    def _say_parts(self, symbol: str, kind: QuantityKind) -> None:
+        """That pressures without a reading are taken as they are into a derived absolute pressure."""
+        for part in self.calculation.derived[symbol].relation.symbols:
+            given = self.calculation.givens.get(part)
+            quantity = given.value.quantity if given is not None else None
+            if quantity is not None and quantity.dimension == kind.dimension and not quantity.reading:
+                self.assume(
+                    f"derived {symbol}/pressure {part}",
+                    f"The pressure {part} = {quantity.text} is taken as absolute, or as a difference of pressures.",
+                    f"its unit does not say absolute or gauge, and the relation of {symbol} takes it as it is",
+                    f"derived {symbol}",
+                )
 
     def _given(self, given: Given, kind: QuantityKind, owner: str, key: str) -> str:
         before = self.kinds.get(given.symbol)
@@ -180,7 +222,7 @@ class Scope:
             self._say_reading(reading, one.value, f"given {one.symbol}")
         self.kinds.setdefault(given.symbol, kind)
         name = f"given/{given.symbol}"
-        return self._above_site(name, given.symbol, owner) if gauge else name
+        return self._above_site(name, given.symbol, owner, owner) if gauge else name
 
     def _literal(self, value: Value, kind: QuantityKind, owner: str, key: str) -> str:
         reading = self._as_kind(value, kind, f"{owner}, {key}")
@@ -196,7 +238,7 @@ class Scope:
             self.dimensions[name] = kind.dimension
             self.check_source(value, name)
         self._say_reading(reading, value, f"{owner}, {key}")
-        return self._above_site(name, kind.symbol, owner) if reading == "gauge" else name
+        return self._above_site(name, kind.symbol, owner, owner) if reading == "gauge" else name
 
     def _as_kind(self, value: Value, kind: QuantityKind, use: str) -> str | None:
         """How a figure reads as a kind (its reading), or None after a fault."""
@@ -232,15 +274,15 @@ class Scope:
                 where,
             )
 
-    def _above_site(self, name: str, symbol: str, owner: str) -> str:
-        """The absolute pressure that belongs to a gauge pressure."""
+    def _above_site(self, name: str, symbol: str, owner: str, what: str) -> str:
+        """The absolute pressure that belongs to a gauge pressure of ``what``."""
         from calcbook.formulas import parse_expression
 
         site = self.site_pressure()
         return self.relation_step(
             f"{name}/absolute",
             "p",
-            f"absolute pressure of {owner}",
+            f"absolute pressure of {what}",
             owner,
             parse_expression("p_g + p_site"),
             {"p_g": name, "p_site": site},

@@ -175,8 +175,8 @@ def same_number(one: Figure, other: Figure) -> bool:
     if one.quantity is None or other.quantity is None:
         return one.text == other.text
     first, second = one.quantity, other.quantity
-    gauge = (first.reading == "gauge") == (second.reading == "gauge")
-    return first.value == second.value and first.dimension == second.dimension and gauge
+    same = first.value == second.value and first.dimension == second.dimension
+    return same and first.on_base_of(second)
 
 
 class _Differences:
