@@ -468,8 +468,7 @@ def wall_limits(chain: Chain, solution: Solution) -> list[WallLimit]:
         return found
     for group in (chain.inner, chain.outer):
         for branch in group.branches:
-            state = chain.streams.get(branch.stream)
-            if state is not None and (branch.kind == "film" or _is_of_one_phase(branch, state)):
+            if has_phase_to_keep(chain, branch):
                 found += _film_limits(chain, solution, group, branch)
     for layer, gap in gaps(chain):
         sides = [solution.figure(name) for name in (layer.first_temperature, layer.second_temperature)]
@@ -477,9 +476,14 @@ def wall_limits(chain: Chain, solution: Solution) -> list[WallLimit]:
     return found
 
 
-def _is_of_one_phase(branch: Branch, state: StreamState) -> bool:
-    """Whether a stated coefficient is that of a stream of one phase whose state is known."""
-    return branch.kind == "stated" and bool(state.pressure) and not state.is_saturated
+def has_phase_to_keep(chain: Chain, branch: Branch) -> bool:
+    """Whether a film has a fluid whose phase at the wall can be looked at; a stated one needs a known one-phase stream."""
+    state = chain.streams.get(branch.stream)
+    if state is None:
+        return False
+    return branch.kind == "film" or (
+        branch.kind == "stated" and bool(state.pressure) and not state.is_saturated
+    )
 
 
 def _film_limits(chain: Chain, solution: Solution, group: Group, branch: Branch) -> list[WallLimit]:

@@ -12,7 +12,7 @@ from calcbook.chain.about_state import about_state
 from calcbook.chain.checks import NOT_EVALUABLE, OUTSIDE, check_states
 from calcbook.chain.completing import completed
 from calcbook.chain.ends import PLACES, end_states, has_ends
-from calcbook.chain.findings import ends_of
+from calcbook.chain.findings import ends_of, has_phase_to_keep
 from calcbook.chain.samples import Samples, mark_directions, mark_walls
 from calcbook.chain.solve import UNKNOWNS, Solution, closed
 from calcbook.chain.types import Branch, Chain, ChainCheck, Group, Layer, StreamState
@@ -133,9 +133,10 @@ def wall_phases(chain: Chain, solution: Solution, condition: str) -> list[WallPh
         surface = chain.results.get(f"T root {element.name}", element.surface_temperature)
         for branch in element.branches:
             changes = branch.situation is not None and branch.situation.changes_phase
-            if branch.kind == "film" and branch.stream and not changes:
-                state = chain.streams[branch.stream]
-                found += _phases_at(branch.name, state, (surface,), solution, condition)
+            if has_phase_to_keep(chain, branch) and not changes:
+                here = _phases_at(branch.name, chain.streams[branch.stream], (surface,), solution, condition)
+                # A stated coefficient of a gas may be that of its condensing.
+                found += [one for one in here if branch.kind == "film" or one.name != "condenses"]
     return found
 
 

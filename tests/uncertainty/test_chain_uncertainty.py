@@ -514,6 +514,39 @@ def test_samples_that_boil_at_the_wall_are_counted(tmp_path) -> None:
     )
 
 
+def test_samples_that_boil_at_the_wall_of_a_stated_film_are_counted(tmp_path) -> None:
+    """T_s = T_i - (T_i - T)·(t/k)/(t/k + 1/h) is linear in T_i, which is even within 6 K of 102 degC."""
+    body = """\
+givens:
+  H: {value: 1 m, is: height, source: test}
+  t: {value: 1 mm, is: thickness, source: test}
+  k_w: {value: 50 W/(m K), is: conductivity, source: test}
+  h_i: {value: 1e9 W/(m^2 K), is: film coefficient, source: test}
+  h: {value: 2000 W/(m^2 K), is: film coefficient, source: test}
+  T_i: {value: 102 degC, is: temperature, source: test}
+  T: {value: 60 degC, is: temperature, source: test}
+  p: {value: 1.01325 bara, is: pressure, source: test}
+streams:
+  water: {fluid: water, temperature: T, pressure: p}
+geometry: {shape: plane, height: H, width: H}
+resistances:
+  - {name: heater, kind: film, coefficient: h_i, temperature: T_i}
+  - {name: wall, kind: wall, conductivity: k_w, thickness: t}
+  - {name: film, kind: film, stream: water, coefficient: h}
+report: {U on: outside}
+"""
+    found = solved(tmp_path, with_tolerance(body, T_i="6 K"), SAMPLED.format("U_clean"))
+    samples = found.uncertainty.sampling
+    part = (0.001 / 50.0) / (0.001 / 50.0 + 1.0 / 2000.0 + 1e-9)
+    # Water boils at 99.974 °C there (CoolProp, IAPWS-95).
+    boils = 60.0 + 39.974 / (1.0 - part)
+    expected = (108.0 - boils) / 12.0
+    assert 0.2 < expected < 0.8
+    row = next(row for row in samples.outside if row.check == "film / wall phase / boils")
+    deviation = math.sqrt(expected * (1.0 - expected) / samples.trials)
+    assert row.samples / samples.trials == pytest.approx(expected, abs=3.0 * deviation + 1e-3)
+
+
 # A counterflow cooler whose resistances are as they stand, whatever the temperatures.
 TWO_ENDS = """\
 givens:
