@@ -7,8 +7,10 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from calcbook.chain.completing import completed
 from calcbook.chain.findings import wall_checks
 from calcbook.chain.outcome import CheckResult
+from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.solve import Solution, conditions_of, solve, solve_both
 from calcbook.chain.types import CONDITIONS, Chain
 from calcbook.chain.variants import with_figures
@@ -44,18 +46,11 @@ def end_states(
         return ()
     any_solution = next(iter(solutions.values()))
     size = any_solution.converged.size
-    orders = {"hot": ("inlet", "outlet"), "cold": ("outlet", "inlet")}
-    if duty.arrangement == "parallel flow":
-        orders["cold"] = orders["hot"]
     figures = {
-        chain.streams[side.stream].temperature: np.concatenate(
-            [
-                np.broadcast_to(any_solution.figure(chain.results[f"T {name} {end}"]).ravel(), (size,))
-                for end in orders[name]
-            ]
+        temperature: np.concatenate(
+            [np.broadcast_to(any_solution.figure(step).ravel(), (size,)) for step in steps]
         )
-        for name, side in duty.sides.items()
-        if f"T {name} mean" in chain.results
+        for temperature, steps in _end_steps(chain).items()
     }
     twice = {name: np.tile(value, 2) if np.ndim(value) else value for name, value in inputs.items()}
     one, given = with_figures(chain, twice, figures)
@@ -71,6 +66,58 @@ def end_states(
         for solution in found.values()
         for number, place in enumerate(PLACES)
     )
+
+
+def _end_steps(chain: Chain) -> dict[str, tuple[str, str]]:
+    """The temperature of each stream of a duty, and the steps that give it at both places."""
+    duty = chain.calculation.duty
+    assert duty is not None, "only a duty has ends"
+    orders = {"hot": ("inlet", "outlet"), "cold": ("outlet", "inlet")}
+    if duty.arrangement == "parallel flow":
+        orders["cold"] = orders["hot"]
+    return {
+        chain.streams[side.stream].temperature: (
+            chain.results[f"T {name} {orders[name][0]}"],
+            chain.results[f"T {name} {orders[name][1]}"],
+        )
+        for name, side in duty.sides.items()
+        if f"T {name} mean" in chain.results
+    }
+
+
+def end_slopes(
+    chain: Chain,
+    inputs: Mapping[str, Array],
+    solutions: Mapping[str, Solution],
+    state: EndState,
+    wanted: tuple[str, ...],
+) -> dict[str, dict[str, Array]]:
+    """Slopes of steps at one end of a single record with respect to every input, as ``derivatives`` gives them.
+
+    The temperatures that the streams have there, and the figures that the file leaves open, move with the inputs as
+    those of the whole unit do. ``solutions`` are those of the record by condition.
+    """
+    condition, number = state.solution.condition, PLACES.index(state.place)
+    temperatures = {name: steps[number] for name, steps in _end_steps(chain).items()}
+    found = {name: (condition, step) for name, step in temperatures.items()}
+    found |= {item.id: (item.condition, item.found) for item in chain.open_figures}
+    whole = completed(chain, inputs)
+    put_in = {name: state.solution.figure(name) for name in temperatures}
+    put_in |= {item.id: whole[item.id] for item in chain.open_figures}
+    one, given = with_figures(chain, whole, put_in)
+    direct = derivatives(one, given, condition, wanted, state.solution)
+    moved: dict[str, dict[str, Array]] = {}
+    for own in dict.fromkeys(where for where, _ in found.values()):
+        steps = {name: step for name, (where, step) in found.items() if where == own}
+        there = derivatives(chain, inputs, own, tuple(steps.values()), solutions.get(own))
+        moved |= {name: there[step] for name, step in steps.items()}
+    total: dict[str, dict[str, Array]] = {}
+    for step, slopes in direct.items():
+        total[step] = {name: slope for name, slope in slopes.items() if name not in moved}
+        for name, slope in ((name, slope) for name, slope in slopes.items() if name in moved):
+            for key, part in moved[name].items():
+                total[step][key] = total[step].get(key, np.zeros(())) + slope * part
+    return total
 
 
 def _start(solutions: Mapping[str, Solution]) -> Array | None:

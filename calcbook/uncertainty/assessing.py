@@ -10,6 +10,8 @@ import numpy as np
 
 from calcbook.calcfile.uncertainty import USUAL_COVERAGE, UncertaintyText
 from calcbook.chain.analysis import is_found_later
+from calcbook.chain.completing import completed
+from calcbook.chain.ends import EndState, closed_ends, end_slopes, end_states
 from calcbook.chain.factors import with_factors
 from calcbook.chain.outcome import CaseOutcome, Result, Solved
 from calcbook.chain.sensitivity import derivatives
@@ -199,23 +201,36 @@ class _Assessment:
     def _budgets(self) -> tuple[Budget, ...]:
         model = ChainModel(self.chain, self.inputs, self.case.solutions, self.results)
         steps = {
-            condition: tuple(
+            state: tuple(
                 dict.fromkeys(
-                    step for one in self.results for there, step in one.parts.values() if there == condition
+                    step for one in self.results for there, step in one.parts.values() if there == state
                 )
             )
-            for condition in model.conditions
+            for state in model.states
         }
         solutions = self.case.solutions
+        ends = self._ends(model)
         slopes = {
-            condition: derivatives(self.chain, self.inputs, condition, wanted, solutions[condition])
-            for condition, wanted in steps.items()
+            state: end_slopes(self.chain, self.inputs, solutions, ends[state], wanted)
+            if state in ends
+            else derivatives(self.chain, self.inputs, state, wanted, solutions[state])
+            for state, wanted in steps.items()
         }
-        values = {condition: solutions[condition].values for condition in steps}
+        values = {
+            state: (ends[state].solution if state in ends else solutions[state]).values for state in steps
+        }
         wide = wide_slopes(model.outputs, self.figures) if self.figures else {}
         return tuple(
             self._budget(one, one.slopes(values, slopes), wide.get(one.name, {})) for one in self.results
         )
+
+    def _ends(self, model: ChainModel) -> dict[str, EndState]:
+        """The ends of the unit that a model looks at, by condition and place."""
+        if not model.looks_at_ends:
+            return {}
+        of_model = {condition: self.case.solutions[condition] for condition in model.conditions}
+        found = closed_ends(end_states(self.chain, completed(self.chain, self.inputs), of_model))
+        return {f"{one.solution.condition} {one.place}": one for one in found}
 
     def _budget(self, one: Measured, slopes: dict[str, float], wide: dict[str, float]) -> Budget:
         found = first_order(self.figures, slopes, self.correlations)

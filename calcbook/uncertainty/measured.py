@@ -8,13 +8,14 @@ from dataclasses import dataclass
 import numpy as np
 
 from calcbook.chain.duty import duty_step
+from calcbook.chain.ends import PLACES, has_ends
 from calcbook.chain.latent import PHASE_CHANGE
 from calcbook.chain.types import CONDITIONS, SERVICE, Chain
 from calcbook.formulas import Relation, evaluate, parse_expression, partial
 
 Array = np.ndarray
 Step = tuple[str, str]
-"""A condition and the id of a step in it."""
+"""A condition, at one end of the unit with the place behind it, and the id of a step there."""
 
 JOINED = {"cleanliness": "U_service/U_clean", "excess_surface": "U_clean/U_service - 1"}
 PLAIN = parse_expression("y")
@@ -63,6 +64,10 @@ def _step(chain: Chain, name: str) -> Step | None:
     of_duty = duty_step(chain, name)
     if of_duty is not None:
         return of_duty
+    for place in PLACES if has_ends(chain) else ():
+        there = _surface(chain, name.removesuffix(f" {place}")) if name.endswith(f" {place}") else None
+        if there is not None:
+            return f"{there[0]} {place}", there[1]
     for condition in CONDITIONS:
         for key, step in chain.results.items():
             if name in _names(key, condition):
@@ -83,12 +88,24 @@ def _names(key: str, condition: str) -> tuple[str, ...]:
     return ()
 
 
+def _surface(chain: Chain, name: str) -> Step | None:
+    for condition in CONDITIONS if chain.has_temperatures else ():
+        for side, group in (("inside", chain.inner), ("outside", chain.outer)):
+            if name == f"T {side} surface {condition}":
+                return condition, group.surface_temperature
+    return None
+
+
+def condition_of(state: str) -> str:
+    """The condition of a part of a result, wherever in the unit it stands."""
+    return state.partition(" ")[0]
+
+
 def _of_stream(chain: Chain, name: str) -> Step | None:
     """Temperatures of the wetted surfaces, and speed and Reynolds number of a stream in service."""
-    for condition in CONDITIONS:
-        for side, group in (("inside", chain.inner), ("outside", chain.outer)):
-            if name == f"T {side} surface {condition}" and chain.has_temperatures:
-                return condition, group.surface_temperature
+    surface = _surface(chain, name)
+    if surface is not None:
+        return surface
     for group in (chain.inner, chain.outer):
         for branch in group.branches:
             state = chain.streams.get(branch.stream)

@@ -18,7 +18,7 @@ from calcbook.chain.solve import UNKNOWNS, Solution, closed
 from calcbook.chain.types import Branch, Chain, ChainCheck, Group, Layer, StreamState
 from calcbook.properties import FluidAtPressure
 from calcbook.uncertainty.figures import has_floor
-from calcbook.uncertainty.measured import Measured
+from calcbook.uncertainty.measured import Measured, condition_of
 from calcbook.uncertainty.sampling import Sampled
 
 Array = np.ndarray
@@ -252,9 +252,8 @@ class ChainModel:
         self.results = tuple(results)
         self.statements = tuple(statements)
         wanted = (*results, *(statement.result for statement in statements))
-        self.conditions = tuple(
-            dict.fromkeys(condition for one in wanted for condition, _ in one.parts.values())
-        )
+        self.states = tuple(dict.fromkeys(state for one in wanted for state, _ in one.parts.values()))
+        self.conditions = tuple(dict.fromkeys(condition_of(state) for state in self.states))
         self.limits: tuple[Limited, ...] = ()
         for condition in self.conditions if limits else ():
             walls = wall_phases(chain, base[condition], condition)
@@ -269,7 +268,7 @@ class ChainModel:
             *(surface.diameter for surface in chain.surfaces),
             *(name for group in (chain.inner, chain.outer) for name in _bulks(group)),
         }
-        self.looks_at_ends = any(one.place for one in self.limits)
+        self.looks_at_ends = any(one.place for one in self.limits) or self.states != self.conditions
         if self.looks_at_ends:
             self.keep |= {UNKNOWNS, *(bound for name in chain.streams for _, bound in ends_of(chain, name))}
 
@@ -315,20 +314,23 @@ class ChainModel:
             mark_directions(here, opposite, first, states)
         possible &= states.missing == 0
         ends = end_states(self.chain, whole, solutions, thorough=False) if self.looks_at_ends else ()
-        places = {(state.solution.condition, state.place): state.solution for state in ends}
+        places = {f"{state.solution.condition} {state.place}": state.solution for state in ends}
+        for state in self.states:
+            if state in places:
+                possible &= places[state].converged
         return self._sampled(solutions, places, possible, size)
 
     def _sampled(
         self,
         solutions: Mapping[str, Solution],
-        ends: Mapping[tuple[str, str], Solution],
+        ends: Mapping[str, Solution],
         possible: Array,
         size: int,
     ) -> Sampled:
         marks: dict[str, Array] = {}
         any_outside = np.zeros(size, dtype=bool)
         for one in self.limits:
-            solution = ends[one.condition, one.place] if one.place else solutions[one.condition]
+            solution = ends[f"{one.condition} {one.place}"] if one.place else solutions[one.condition]
             outside = np.broadcast_to(one.outside(solution), (size,))
             if one.place:
                 # Where the circuit does not close at an end nothing is known of it, as in a record.
@@ -339,7 +341,7 @@ class ChainModel:
                 any_outside |= outside
             name = mark_of(one)
             marks[name] = marks[name] | outside if name in marks else outside
-        values = {condition: solution.values for condition, solution in solutions.items()}
+        values = {state: solution.values for state, solution in (*solutions.items(), *ends.items())}
         outputs = {
             one.name: np.where(possible, np.broadcast_to(one.value(values), (size,)), np.nan)
             for one in self.results
