@@ -117,12 +117,30 @@ def is_found_later(name: str) -> bool:
 
 
 def judged_later(solved: Solved, collector: Collector) -> Solved:
-    """A solved calculation with the criteria over what was found from it, each in its place among the others."""
+    """A solved calculation with the criteria over what was found from it, each in its place among the others.
+
+    What is found of the base case holds in a case too that restates nothing but times of growing terms.
+    """
     if not any(is_found_later(item.result) for item in solved.chain.calculation.acceptance):
         return solved
-    base = solved.base
-    criteria = _Analysis(solved.chain, collector).criteria("", base.results, base.solutions, found_later=True)
-    return replace(solved, cases=(replace(base, criteria=criteria), *solved.cases[1:]))
+    later = {name: result for name, result in solved.base.results.items() if is_found_later(name)}
+    analysis = _Analysis(solved.chain, collector)
+    cases = []
+    for case in solved.cases:
+        if keeps_what_is_found_later(solved.chain, case.name):
+            results = {**case.results, **later}
+            criteria = analysis.criteria(case.name, results, case.solutions, found_later=True)
+            case = replace(case, criteria=criteria)
+        cases.append(case)
+    return replace(solved, cases=tuple(cases))
+
+
+def keeps_what_is_found_later(chain: Chain, case: str) -> bool:
+    """Whether a case restates nothing that moves what is found of the base case over the time in service."""
+    times = {growing.time for growing in chain.growing}
+    restated = {f"given/{symbol}" for symbol in chain.calculation.cases.get(case, {})}
+    typed = {symbol for symbol, places in chain.used_in.items() if len(places) > 1}
+    return restated <= times - {f"given/{symbol}" for symbol in typed}
 
 
 def analyse(chain: Chain, collector: Collector) -> Solved | None:
@@ -194,14 +212,18 @@ class _Analysis:
         rows = {
             key: np.array([float(inputs[key]) for inputs in self.inputs.values()]) for key in self.inputs[""]
         }
+        moving = {key for key, row in rows.items() if (row != row[0]).any()}
         both = solve_both(
-            self.chain,
-            {key: row if (row != row[0]).any() else row[:1].reshape(()) for key, row in rows.items()},
+            self.chain, {key: row if key in moving else row[:1].reshape(()) for key, row in rows.items()}
         )
         evaluate_pressure_drops(self.chain, both)
         solutions = conditions_of(both)
         return {
-            name: {condition: solution.sample(number) for condition, solution in solutions.items()}
+            # Cases that restate the figures of the base case are the one sample that it is.
+            name: {
+                condition: solution.sample(number if moving else 0)
+                for condition, solution in solutions.items()
+            }
             for number, name in enumerate(self.inputs)
         }
 
@@ -727,7 +749,7 @@ class _Analysis:
             result = results.get(criterion.result)
             if result is None:
                 if later:
-                    judged = self._not_lost(number, criterion, solutions)
+                    judged = self._not_lost(number, criterion, case, solutions)
                 else:
                     judged = self._without_value(number, criterion, case, solutions)
                 if judged is not None:
@@ -779,7 +801,7 @@ class _Analysis:
         return _told_in_words(number, criterion, case, base.kind, float(limit), False, words)
 
     def _not_lost(
-        self, number: int, criterion: Criterion, solutions: Mapping[str, Solution]
+        self, number: int, criterion: Criterion, case: str, solutions: Mapping[str, Solution]
     ) -> CriterionResult | None:
         """The criterion over a duty that is not lost, where the time that was looked at settles it; else None."""
         stated = self.chain.calculation.time_in_service
@@ -791,7 +813,7 @@ class _Analysis:
         if limit is None or not until >= float(limit):
             return None
         met, words = OPPOSITE[criterion.operator] > 0.0, f"the duty is not lost within {stated.until.text}"
-        return _told_in_words(number, criterion, "", kind, float(limit), met, words)
+        return _told_in_words(number, criterion, case, kind, float(limit), met, words)
 
     def _report_unknown(self, criterion: Criterion, results: Mapping[str, Result]) -> None:
         name = shown(criterion.result)

@@ -20,6 +20,7 @@ from calcbook.chain.in_service import lay_out_in_service
 from calcbook.chain.latent import BECAUSE, NO_FLOW, PHASE_CHANGE, SOME_FLOW, WHOLE_FLOW
 from calcbook.chain.petroleum import lay_out_cards
 from calcbook.chain.pressure import asked_symbols, lay_out_pressure_drop
+from calcbook.chain.saturation_loss import with_saturation_losses
 from calcbook.chain.scope import Scope, unnamed_kind
 from calcbook.chain.services import check_services
 from calcbook.chain.specified import SpecifiedFouling
@@ -124,6 +125,7 @@ class _Builder:
         if self.collector or basis is None or elements is None:
             self._mark_unused()
             return None
+        elements = with_saturation_losses(scope, elements, self.streams)
         laid_out = Circuit(scope, elements, shape, basis, self.streams, self.speeds)
         circuit, results = laid_out.lay_out()
         if self.specified is not None:

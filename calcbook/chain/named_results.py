@@ -31,6 +31,12 @@ def conditions_of(name: str) -> tuple[str, ...]:
     return (CLEAN,) if found is not None and CLEAN in found.groups() else (SERVICE,)
 
 
+def pressure_drop_of(name: str) -> tuple[str, str] | None:
+    """The stream and the condition of a pressure drop by its name; None for another result."""
+    found = _PRESSURE_DROP.fullmatch(name)
+    return (found[1], found[2]) if found is not None else None
+
+
 def is_coefficient(name: str) -> bool:
     """Whether a result is an overall coefficient, so that its reciprocal is a resistance."""
     found = _WITH_CONDITION.fullmatch(name)

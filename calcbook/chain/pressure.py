@@ -27,7 +27,7 @@ from calcbook.chain.types import (
 )
 from calcbook.faults import Collector, Fault, Faults
 from calcbook.formulas import evaluate
-from calcbook.library.cards import Choice, Friction
+from calcbook.library.cards import Choice, Friction, Method
 from calcbook.library.operations import run
 from calcbook.quantities import DIMENSIONLESS
 
@@ -273,6 +273,12 @@ def pressure_drop_checks(chain: Chain, solution: Solution) -> list[ChainCheck]:
         law = law_of(drop, solution)
         checks += [*(law.checks if law is not None else ()), *drop.total.checks]
     return checks
+
+
+def acting_methods(drop: PressureDrop, solution: Solution) -> tuple[Method, ...]:
+    """The cards that gave a pressure drop of a single record: the drop itself, and its law of friction."""
+    law = law_of(drop, solution)
+    return (drop.total.method, law.method) if law is not None else (drop.total.method,)
 
 
 def drops(chain: Chain) -> list[tuple[Group, Branch, PressureDrop]]:

@@ -43,7 +43,7 @@ class Budget(NamedTuple):
 
     ``degrees`` are the effective degrees of freedom (infinite where none are stated); ``wide_standard`` is the
     standard uncertainty from finite differences of one standard uncertainty to either side, NaN where the
-    chain has no value there.
+    chain has no value there. ``also`` are other names of the result.
     """
 
     result: str
@@ -57,6 +57,7 @@ class Budget(NamedTuple):
     degrees: float
     wide_standard: float
     is_nonlinear: bool
+    also: tuple[str, ...] = ()
 
     @property
     def relative(self) -> float:
@@ -144,8 +145,26 @@ class Sampling(NamedTuple):
     generator: str
 
 
+class Spread(NamedTuple):
+    """First order alone: a result that a criterion judges in a case other than the assessed one.
+
+    ``missing`` are the terms whose method has no part in it.
+    """
+
+    case: str
+    result: str
+    kind: QuantityKind
+    value: float
+    standard: float
+    expanded: float
+    missing: tuple[str, ...]
+
+
 class Uncertainty(NamedTuple):
-    """The uncertainty of a calculation's results in one case; the empty name is the base case."""
+    """The uncertainty of a calculation's results in one case; the empty name is the base case.
+
+    ``elsewhere`` holds what the criteria judge in the other cases.
+    """
 
     case: str
     coverage: float
@@ -154,3 +173,4 @@ class Uncertainty(NamedTuple):
     correlations: tuple[CorrelationRow, ...]
     exact_allowances: tuple[str, ...]
     sampling: Sampling | None = None
+    elsewhere: tuple[Spread, ...] = ()

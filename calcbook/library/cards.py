@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 
@@ -11,6 +12,7 @@ from calcbook.faults import Place
 from calcbook.formulas import Relation
 from calcbook.quantities import QuantityKind
 
+BAND = re.compile(r"([0-9]+(?:\.[0-9]+)?) %")
 STANDINGS = (
     "published",
     "independent library",
@@ -166,6 +168,12 @@ class Accuracy:
     coverage: str
     stated_by: str
     standing: str
+
+    @property
+    def band(self) -> float | None:
+        """The half width as a part of the value; None where the card states more or less than one figure."""
+        found = BAND.fullmatch(self.within)
+        return float(found[1]) / 100.0 if found is not None else None
 
 
 @dataclass(frozen=True, slots=True)

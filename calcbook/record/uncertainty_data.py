@@ -21,6 +21,18 @@ def uncertainty_data(found: Uncertainty) -> Data:
             {"between": [one.first, one.second], "r": rounded(one.coefficient), "source": one.source}
             for one in found.correlations
         ],
+        "other_cases": [
+            {
+                "case": one.case,
+                "result": one.result,
+                "value": rounded(one.value),
+                "standard_uncertainty": rounded(one.standard),
+                "expanded_uncertainty": rounded(one.expanded),
+                "unit": one.kind.unit,
+                "terms_left_out": list(one.missing),
+            }
+            for one in found.elsewhere
+        ],
         "samples": _samples(found.sampling) if found.sampling is not None else None,
     }
 
@@ -30,6 +42,9 @@ def displayed_uncertainty(found: Uncertainty) -> Iterator[tuple[str, list[str]]]
     for budget in found.budgets:
         for name, value in (("standard", budget.standard), ("expanded", budget.expanded)):
             yield f"uncertainty {budget.result} / {name}", [f"{value:.2g}", budget.kind.unit]
+    for spread in found.elsewhere:
+        name = f"uncertainty {spread.result} in {spread.case or 'base'} / expanded"
+        yield name, [f"{spread.expanded:.2g}", spread.kind.unit]
     if found.sampling is None:
         return
     for one in found.sampling.results:

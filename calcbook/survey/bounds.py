@@ -20,7 +20,7 @@ from calcbook.chain.types import Chain
 from calcbook.faults import Collector
 from calcbook.quantities import Tolerance, read_tolerance
 from calcbook.survey.resistance import LOSS
-from calcbook.uncertainty.accuracy import factor_from
+from calcbook.uncertainty.accuracy import factor_of_card
 from calcbook.uncertainty.distributions import Rectangular
 from calcbook.uncertainty.figures import stated_figures
 
@@ -81,7 +81,7 @@ def _methods(chain: Chain, slopes: Mapping[str, Array]) -> tuple[list[Part], lis
     parts, without = [], []
     for name in (name for name in slopes if name.startswith(FACTOR)):
         card = chain.library.method(name.removeprefix(FACTOR))
-        factor = factor_from(card.accuracy)
+        factor = factor_of_card(card, chain.library)
         if isinstance(factor, str):
             without.append(f"{card.id} ({factor})")
             continue

@@ -12,14 +12,16 @@ import re
 from dataclasses import dataclass
 from statistics import NormalDist
 
-from calcbook.library.cards import Accuracy
+from calcbook.library import Library
+from calcbook.library.cards import Accuracy, Method
 from calcbook.uncertainty.distributions import LARGEST_NORMAL, Distribution, LogNormal, Rectangular, positive
 
-BAND = re.compile(r"([0-9]+(?:\.[0-9]+)?) %")
 MEAN = re.compile(r"([0-9]+(?:\.[0-9]+)?) % mean")
 SHARE = re.compile(r"([0-9]+(?:\.[0-9]+)?) % of ")
 MOST = "most data"
 MOST_SHARE = 0.95
+# What a card of a film coefficient gives: the coefficient, or the Nusselt number that it follows from.
+FILM_RESULTS = ("h", "Nu")
 # The standing of an accuracy that was found against calculated figures: an exact solution at constant properties, say.
 OF_A_FIT = "independent numerics"
 
@@ -30,6 +32,23 @@ class Factor:
 
     distribution: Distribution
     rule: str
+
+
+def factor_of_card(method: Method, library: Library) -> Factor | str:
+    """The factor of a card on its film coefficient: by its own accuracy, else by the widest of the cards it uses.
+
+    What a card adds to the coefficients that it joins then has no part of its own.
+    """
+    own = factor_from(method.accuracy)
+    if method.accuracy is not None:
+        return own
+    used = [library.method(use.method) for use in method.uses]
+    joined = [(one, factor_from(one.accuracy)) for one in used if one.gives in FILM_RESULTS]
+    found = [(card, factor) for card, factor in joined if isinstance(factor, Factor)]
+    if not found:
+        return own
+    card, widest = max(found, key=lambda pair: pair[1].distribution.standard)
+    return Factor(widest.distribution, f"as {card.id}, which it uses, {widest.rule}")
 
 
 def factor_from(accuracy: Accuracy | None) -> Factor | str:
@@ -46,10 +65,9 @@ def factor_from(accuracy: Accuracy | None) -> Factor | str:
             positive(1.0, deviation * math.sqrt(math.pi / 2.0)),
             f"{stated}: mean deviation × √(π/2)",
         )
-    band = BAND.fullmatch(accuracy.within)
-    if band is None:
+    half_width = accuracy.band
+    if half_width is None:
         return f"its accuracy ({stated}) is not one figure for the coefficient"
-    half_width = float(band[1]) / 100.0
     share = SHARE.match(accuracy.coverage)
     if share is not None or accuracy.coverage == MOST:
         part = float(share[1]) / 100.0 if share is not None else MOST_SHARE

@@ -25,6 +25,7 @@ from calcbook.chain.uncertainty_outcome import (
     OutsideRow,
     SampledResult,
     Sampling,
+    Spread,
     Uncertainty,
 )
 from calcbook.faults import Collector, nearest_names, shown
@@ -67,12 +68,32 @@ def with_uncertainty(solved: Solved, collector: Collector) -> Solved:
     correlations = _correlations(asked, figures, collector)
     if collector or not results:
         return solved
-    return replace(
-        solved,
-        uncertainty=_Assessment(
-            case, chain, (*figures, *factors), left_out, results, correlations, asked
-        ).uncertainty(),
-    )
+    elsewhere = _elsewhere(solved, case, chain, correlations)
+    found = _Assessment(case, chain, (*figures, *factors), left_out, results, correlations, asked)
+    return replace(solved, uncertainty=found.uncertainty()._replace(elsewhere=elsewhere))
+
+
+def _elsewhere(
+    solved: Solved, assessed: CaseOutcome, chain: Chain, correlations: Correlations
+) -> tuple[Spread, ...]:
+    """What the criteria judge in the cases that are not the assessed one."""
+    asked = chain.calculation.uncertainty
+    found: list[Spread] = []
+    for case in (case for case in solved.cases if case is not assessed):
+        named = dict.fromkeys(chain.calculation.criterion(row.id).result for row in case.criteria)
+        parts = (measured(chain, name) for name in named if name in case.results)
+        results = tuple(one for one in parts if one is not None)
+        if not results:
+            continue
+        beyond = Collector()
+        figures = stated_figures(chain, beyond, case.name)
+        if beyond:
+            # A tolerance stated for the base case may be too wide for a figure that this case restates.
+            continue
+        factors, left_out = method_figures(chain, case.solutions)
+        one = _Assessment(case, chain, (*figures, *factors), left_out, results, correlations, asked)
+        found += one.spreads()
+    return tuple(found)
 
 
 def _results(
@@ -110,7 +131,10 @@ def _results(
     for name in (*usual, *named):
         one = measured(chain, name) if name in known else None
         # One figure under two names (U on bare tubes is U on the outside) has one budget.
-        if one is not None and all(one.parts != other.parts for other in found.values()):
+        same = next((other for other in found.values() if one is not None and one.parts == other.parts), None)
+        if same is not None and name != same.name:
+            found[same.name] = replace(same, also=tuple(dict.fromkeys((*same.also, name))))
+        elif one is not None:
             found[name] = one
     return tuple(found.values())
 
@@ -198,7 +222,16 @@ class _Assessment:
 
     # -- first order --------------------------------------------------------------------------------
 
-    def _budgets(self) -> tuple[Budget, ...]:
+    def spreads(self) -> list[Spread]:
+        """The expanded uncertainties alone."""
+        missing = tuple(dict.fromkeys(item.term for item in self.left_out))
+        return [
+            Spread(self.case.name, one.result, one.kind, one.value, one.standard, one.expanded, missing)
+            for one in self._budgets(is_wide=False)
+        ]
+
+    def _budgets(self, is_wide: bool = True) -> tuple[Budget, ...]:
+        """A budget of each result; ``is_wide`` for the slopes over a standard uncertainty beside the others."""
         model = ChainModel(self.chain, self.inputs, self.case.solutions, self.results)
         steps = {
             state: tuple(
@@ -219,7 +252,7 @@ class _Assessment:
         values = {
             state: (ends[state].solution if state in ends else solutions[state]).values for state in steps
         }
-        wide = wide_slopes(model.outputs, self.figures) if self.figures else {}
+        wide = wide_slopes(model.outputs, self.figures) if self.figures and is_wide else {}
         return tuple(
             self._budget(one, one.slopes(values, slopes), wide.get(one.name, {})) for one in self.results
         )
@@ -252,6 +285,7 @@ class _Assessment:
             found.degrees,
             over_widths,
             is_nonlinear(found.standard, over_widths),
+            one.also,
         )
 
     # -- samples ------------------------------------------------------------------------------------

@@ -14,7 +14,7 @@ from calcbook.chain.uncertainty_outcome import BudgetInput, LeftOut
 from calcbook.faults import Collector
 from calcbook.formulas import number_text
 from calcbook.quantities import QuantityFault, QuantityKind, read_tolerance
-from calcbook.uncertainty.accuracy import factor_from
+from calcbook.uncertainty.accuracy import factor_of_card
 from calcbook.uncertainty.distributions import (
     Distribution,
     Normal,
@@ -177,7 +177,7 @@ def method_figures(
         acting = {chosen(branch, solution).method.id for solution in solutions.values()}
         for candidate in branch.candidates:
             method = candidate.method
-            factor = factor_from(method.accuracy)
+            factor = factor_of_card(method, chain.library)
             if isinstance(factor, str):
                 if method.id in acting:
                     left_out[branch.name, method.id] = LeftOut(branch.name, method.id, factor)

@@ -23,11 +23,12 @@ PLAIN = parse_expression("y")
 
 @dataclass(frozen=True, slots=True)
 class Measured:
-    """A result as a relation over steps of the chain; ``parts`` binds its symbols."""
+    """A result as a relation over steps of the chain; ``parts`` binds its symbols, ``also`` are its other names."""
 
     name: str
     relation: Relation
     parts: Mapping[str, Step]
+    also: tuple[str, ...] = ()
 
     def value(self, solved: Mapping[str, Mapping[str, Array]]) -> Array:
         """The result from the steps of every condition, on arrays."""

@@ -92,3 +92,27 @@ def test_a_result_that_the_file_does_not_ask_for_says_by_which_key(tmp_path: Pat
     ):
         with pytest.raises(Faults, match=f"only where the file has `{key}:`"):
             solved(tmp_path, COOLER + stated(f"{name} >= {limit}"))
+
+
+def test_a_case_that_restates_the_time_alone_is_judged_by_what_is_found(tmp_path: Path, days: float) -> None:
+    cases = "cases:\n"
+    for name, time in (("sooner", math.floor(days) - 1), ("later", math.ceil(days) + 1)):
+        cases += f"  {name}:\n    t_after: {{value: {time} days, source: test}}\n"
+    result = solved(tmp_path, COOLER + TABLE + stated(f"{LOST} >= t_after") + cases)
+    assert {case.name: case.criteria[0].met for case in result.cases} == {
+        "": True,
+        "sooner": True,
+        "later": False,
+    }
+
+
+def test_a_case_that_restates_more_is_told_to_be_not_judged(tmp_path: Path) -> None:
+    old = "outlet: {value: 68 degC, source: s}"
+    assert COOLER.count(old) == 1
+    body = COOLER.replace(old, "outlet: T_ho").replace(
+        "givens:\n", "givens:\n  T_ho: {value: 68 degC, is: hot outlet, source: test}\n"
+    )
+    cases = "cases:\n  other:\n    T_ho: {value: 68.5 degC, source: test}\n"
+    result = solved(tmp_path, body + TABLE + stated(f"{LOST} >= t_after") + cases)
+    assert [len(case.criteria) for case in result.cases] == [1, 0]
+    assert f"1 of 1 criterion met. Not judged in case other: {LOST}." in record_text(result)

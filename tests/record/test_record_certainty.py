@@ -113,3 +113,101 @@ def test_a_margin_below_zero_is_taken_from_the_stacked_ones() -> None:
     assert together - less == pytest.approx(
         100.0 * (installed / clean - 1.0), abs=0.11
     )  # two roundings to 0.1 %
+
+
+def with_case_as_base(name: str, case: str, folder: Path) -> Path:
+    """A calculation file with the figures of one of its cases in the place of those of the base case."""
+    text = (CALCS / f"{name}.yaml").read_text(encoding="utf-8")
+    block = text.split(f"\n  {case}:\n", 1)[1]
+    for line in block.splitlines():
+        found = re.fullmatch(r"    (\w+): +\{value: ([^,]+), .*", line)
+        if found is None:
+            break
+        text, count = re.subn(rf"(?m)^(  {found[1]}: +\{{value: )[^,]+", rf"\g<1>{found[2]}", text, count=1)
+        assert count == 1
+    path = folder / f"{name}.yaml"
+    path.write_text(text, encoding="utf-8")
+    return path
+
+
+@pytest.mark.parametrize(
+    ("name", "case", "result"),
+    [
+        ("co-993", "winter", "U_service"),
+        ("ha-992", "fresh air", "U_service"),
+        ("jv-971", "storage", "U_service"),
+        ("hr-821", "yearly cleaning", "area_margin"),
+    ],
+)
+def test_a_case_is_as_sure_as_it_would_be_as_the_base(
+    tmp_path: Path, name: str, case: str, result: str
+) -> None:
+    spreads = solve_file(CALCS / f"{name}.yaml", for_record=False).uncertainty.elsewhere
+    (spread,) = [one for one in spreads if (one.case, one.result) == (case, result)]
+    alone = solve_file(with_case_as_base(name, case, tmp_path), for_record=False)
+    budget = next(one for one in alone.uncertainty.budgets if one.result == result)
+    # The curves of the properties end elsewhere with another base case: they agree within about 1e-8.
+    assert spread.value == pytest.approx(budget.value, rel=1e-7)
+    assert spread.expanded == pytest.approx(budget.expanded, rel=1e-6)
+
+
+def test_a_verdict_of_a_case_says_how_sure_it_is() -> None:
+    rows = [line for line in lines("co-993") if line.startswith("| criterion 1 | winter")]
+    assert rows and all("the limit lies within the expanded uncertainty" in row for row in rows)
+
+
+def test_a_case_whose_figure_has_no_room_for_the_tolerance_says_so() -> None:
+    """The wind of 0 m/s of the case cannot have the ± 1 m/s of the base case."""
+    rows = [line for line in lines("sl-301") if line.startswith("| criterion 1 | still air")]
+    assert rows and all("its uncertainty is not worked out" in row for row in rows)
+
+
+def test_a_bundle_is_as_sure_as_the_tube_that_it_is_made_of() -> None:
+    """Cooper's 30 % is taken as a bound: U moves by its slope times 30 %/√3."""
+    budget = next(
+        one for one in solve_file(CALCS / "kr-801.yaml").uncertainty.budgets if one.result == "U_service"
+    )
+    row = next(one for one in budget.rows if one.input.id.endswith("bundle-boiling-cooper"))
+    assert row.input.standard == pytest.approx(0.30 / 3.0**0.5)
+    assert row.contribution == pytest.approx(row.slope * 0.30 / 3.0**0.5)
+    assert "as cooper-1984, which it uses" in row.input.rule
+    for number in (1, 2):
+        assert "the limit lies within the expanded uncertainty" in line_with(
+            "kr-801", f"| criterion {number}"
+        )
+
+
+def test_a_verdict_names_the_film_that_its_uncertainty_lacks() -> None:
+    row = line_with("oc-201", "| criterion 1 | warm running")
+    assert "criterion not met at the stated values; its uncertainty lacks the part of oil film" in row
+
+
+def test_a_pressure_drop_is_judged_with_the_accuracy_of_its_cards() -> None:
+    """55.7 kPa by a card that states 50 % beside a limit of 60 kPa; 103.6 by one of 2 % beside 120 kPa."""
+    assert "within the accuracy of martin-1996-friction, 50.0 %" in line_with("pc-961", "| criterion 2")
+    assert "within the accuracy" not in line_with("hr-821", "| criterion 2 | base")
+    assert "martin-1996-friction within 50 %" in line_with("pc-961", "| Pressure drop of wash water, in")
+
+
+def test_one_figure_under_two_names_has_one_budget() -> None:
+    budgets = [line for line in lines("ab-901") if line.startswith("#### Budget of U_service")]
+    assert budgets == ["#### Budget of U_service, U_service on bare"]
+    assert "the limit lies within the expanded uncertainty" in line_with("ab-901", "| criterion 1")
+
+
+def test_what_limits_a_proposal_stands_among_the_cautions() -> None:
+    found = [line for line in lines("wc-111") if line.startswith("- Survey: ")]
+    assert len(found) == 2 and "the offsets lie" in found[0] and "rows reach" in found[1]
+
+
+def test_the_saturation_temperature_that_steam_loses_is_looked_at() -> None:
+    """Steam tables (IAPWS-IF97): 1.02 bar 100.16 degC, 0.952 bar 98.24 degC; the pentane boils at 72.1 degC."""
+    solved = solve_file(CALCS / "kr-801.yaml")
+    (check,) = [
+        one
+        for one in solved.base.checks
+        if one.id == "steam film / saturation / pressure drop" and one.condition == "service"
+    ]
+    assert (check.level, check.state) == ("caution", "outside")
+    assert check.value == pytest.approx(1.92, abs=0.01)
+    assert float(check.limit.split()[1]) == pytest.approx(0.05 * (100.16 - 72.1), abs=0.01)

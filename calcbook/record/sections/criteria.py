@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+from calcbook.chain.named_results import pressure_drop_of
 from calcbook.chain.outcome import CriterionResult
+from calcbook.chain.pressure import acting_methods, drops
 from calcbook.record.numbers import (
     CONCLUSION_DIGITS,
     PLAIN_DIGITS,
@@ -15,7 +17,7 @@ from calcbook.record.numbers import (
     with_unit,
 )
 from calcbook.record.page import Page, case_name
-from calcbook.record.sections.uncertainty import certainty_words
+from calcbook.record.sections.uncertainty import AT_STATED, certainty_words, result_of
 
 CRITERION_COLUMNS = ("Criterion", "Case", "Stated", "Value", "Limit", "Margin", "Verdict", "Source")
 
@@ -27,8 +29,7 @@ def criterion_row(item: CriterionResult, page: Page) -> tuple[str, ...]:
     shown = unit_text(unit)
     value, limit = apart(item.limit if item.words else item.value, item.limit, unit, point, PLAIN_DIGITS)
     verdict = "criterion met" if item.met else "criterion not met"
-    if not item.case:
-        verdict += certainty_words(page.solved.uncertainty, item)
+    verdict += _of_pressure_drop(item, page) or certainty_words(page.solved.uncertainty, item)
     return (
         item.id,
         case_name(item.case),
@@ -38,6 +39,29 @@ def criterion_row(item: CriterionResult, page: Page) -> tuple[str, ...]:
         "not known" if item.words else _margin(item, page),
         verdict,
         item.source or "no source",
+    )
+
+
+def _of_pressure_drop(item: CriterionResult, page: Page) -> str:
+    """What the cards of a pressure drop say of a verdict: whether their accuracy reaches to the limit."""
+    named = pressure_drop_of(result_of(item))
+    case = next((one for one in page.solved.cases if one.name == item.case), None)
+    if named is None or case is None:
+        return ""
+    stream, condition = named
+    stated = [
+        (method.accuracy.band, method)
+        for _, branch, drop in drops(page.chain)
+        if branch.stream == stream
+        for method in acting_methods(drop, case.solutions[condition])
+        if method.accuracy is not None and method.accuracy.band is not None
+    ]
+    if not stated:
+        return ""
+    band, method = max(stated, key=lambda pair: pair[0])
+    reaches = abs(item.margin) <= band * abs(item.value)
+    return (
+        f"{AT_STATED}; the limit lies within the accuracy of {method.id}, {percent(band)}" if reaches else ""
     )
 
 

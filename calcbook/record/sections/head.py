@@ -4,7 +4,9 @@ from __future__ import annotations
 
 from calcbook.chain.analysis import is_found_later
 from calcbook.chain.outcome import CaseOutcome
-from calcbook.chain.pressure import drops
+from calcbook.chain.pressure import acting_methods, drops
+from calcbook.chain.solve import Solution
+from calcbook.chain.types import PressureDrop
 from calcbook.record.blocks import Block, Heading, Paragraph, Quote, Table
 from calcbook.record.numbers import (
     CONCLUSION_DIGITS,
@@ -125,9 +127,20 @@ def _pressure_rows(page: Page) -> list[tuple[str, str, str]]:
                 value = in_report_unit(result.value, result.kind, page.calculation.report, CONCLUSION_DIGITS)
                 basis = (
                     f"{drop.total.method.id}, at {group.name}{_deposit_words(page, group.side, condition)}"
+                    f"{_accuracy_words(drop, page.base.solutions[condition])}"
                 )
                 rows.append((f"Pressure drop of {branch.stream}, {words}", value, basis))
     return rows
+
+
+def _accuracy_words(drop: PressureDrop, solution: Solution) -> str:
+    """How good the cards of a pressure drop say that they are."""
+    stated = [
+        f"{method.id} within {method.accuracy.within}"
+        for method in acting_methods(drop, solution)
+        if method.accuracy is not None
+    ]
+    return f"; {', '.join(stated)}" if stated else ""
 
 
 def _deposit_words(page: Page, side: str, condition: str) -> str:

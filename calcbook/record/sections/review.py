@@ -4,12 +4,14 @@ from __future__ import annotations
 
 from collections.abc import Callable
 
+from calcbook.chain.analysis import is_found_later, keeps_what_is_found_later
 from calcbook.chain.outside import stands_in_the_open
 from calcbook.chain.types import CONDITIONS, SERVICE
 from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Quote, Table
 from calcbook.record.numbers import celsius, in_report_unit, percent
 from calcbook.record.page import HOUSE_METHOD, Page, case_name, counted
 from calcbook.record.sections.head import confirmation
+from calcbook.record.sections.survey import survey_cautions
 from calcbook.record.sections.validity import SMALLEST_RESIDUAL, residual, verdict
 
 FOR_CHECKER = "for the checker:"
@@ -65,7 +67,11 @@ def _unverified(page: Page) -> str:
     if not items:
         return "The engineer states no assumption."
     if not open_ones:
-        return f"All {counted(len(items), 'assumption is', 'assumptions are')} verified."
+        return (
+            "The assumption is verified."
+            if len(items) == 1
+            else f"All {len(items)} assumptions are verified."
+        )
     return f"Of {counted(len(items), 'assumption', 'assumptions')}, not verified: {', '.join(open_ones)}."
 
 
@@ -155,7 +161,19 @@ def _criteria(page: Page) -> str:
         if failed
         else ""
     )
-    return f"{len(items) - len(failed)} of {counted(len(items), 'criterion', 'criteria')} met{words}."
+    words = f"{len(items) - len(failed)} of {counted(len(items), 'criterion', 'criteria')} met{words}."
+    return " ".join((words, *_not_judged(page)))
+
+
+def _not_judged(page: Page) -> list[str]:
+    """The criteria over what is found once for the calculation, and the cases that they say nothing of."""
+    later = [item.result for item in page.calculation.acceptance if is_found_later(item.result)]
+    cases = [
+        case_name(case.name)
+        for case in page.solved.cases
+        if not keeps_what_is_found_later(page.chain, case.name)
+    ]
+    return [f"Not judged in case {', '.join(cases)}: {', '.join(later)}."] if later and cases else []
 
 
 def _cards(page: Page) -> str:
@@ -268,6 +286,7 @@ def _triggered(page: Page) -> list[str]:
         *_house(page),
         *_criterion(page),
         *_day_one(page),
+        *_survey(page),
     ]
 
 
@@ -307,7 +326,7 @@ def can_be_touched(page: Page) -> bool:
 def _wall(page: Page) -> list[str]:
     return [
         f"{check.id}, case {case_name(check.case)}, {check.condition}: {check.figure}, limit {check.limit};"
-        " the method is not meant for this."
+        f" {check.because}."
         for check in page.every_check()
         if check.card == "wall phase" and check.state in ("outside", "accepted")
     ]
@@ -393,6 +412,16 @@ def _criterion(page: Page) -> list[str]:
         for item in case.criteria
         if not item.met
     ]
+
+
+def _survey(page: Page) -> list[str]:
+    """What limits the allowance that plant data give."""
+    outcome = page.solved.survey
+    return (
+        [f"Survey: {line[0].lower()}{line[1:]}" for line in survey_cautions(outcome)]
+        if outcome is not None
+        else []
+    )
 
 
 def _day_one(page: Page) -> list[str]:

@@ -88,17 +88,23 @@ def _rows(outcome: SurveyOutcome) -> list[Block]:
         "Each row kept goes through the chain above, clean, at its own flows and temperatures:"
         f" {outcome.row_relations}, where x is the heat loss."
     )
-    many = (
-        [
-            Paragraph(
-                f"Caution: {percent(rejected / outcome.rows)} of the rows are rejected; what is left may not stand for the"
-                " unit."
-            )
-        ]
-        if rejected > MANY_REJECTED * outcome.rows
-        else []
-    )
+    many = [Paragraph(f"Caution: {line}") for line in _many_rejected(outcome)]
     return [Paragraph(words), table, *many, Paragraph(more), *_gaps(outcome), Paragraph(relations)]
+
+
+def survey_cautions(outcome: SurveyOutcome) -> list[str]:
+    """What a reader of the proposal must not overlook."""
+    beyond = [_reach(outcome)] if outcome.after > outcome.period else []
+    return [*_many_rejected(outcome), *_offsets_apart(outcome), *beyond]
+
+
+def _many_rejected(outcome: SurveyOutcome) -> list[str]:
+    rejected = outcome.rows - outcome.kept
+    if not rejected > MANY_REJECTED * outcome.rows:
+        return []
+    return [
+        f"{percent(rejected / outcome.rows)} of the rows are rejected; what is left may not stand for the unit."
+    ]
 
 
 def _gaps(outcome: SurveyOutcome) -> list[Block]:
@@ -139,20 +145,19 @@ def _cycles(outcome: SurveyOutcome, page: Page) -> list[Block]:
         )
         for one in outcome.cycles
     )
-    return [Paragraph(words), Table(columns, rows), *_offsets(outcome)]
+    apart = [Paragraph(f"Caution: {line}") for line in _offsets_apart(outcome)]
+    return [Paragraph(words), Table(columns, rows), *apart]
 
 
-def _offsets(outcome: SurveyOutcome) -> list[Block]:
-    """A caution where the cleanings do not start from one zero."""
+def _offsets_apart(outcome: SurveyOutcome) -> list[str]:
+    """Where the cleanings do not start from one zero."""
     apart = outcome.offsets_differ_by
     if not apart > OFFSETS_APART * outcome.offsets_scatter:
         return []
     return [
-        Paragraph(
-            f"Caution: the offsets lie {number(apart, DIGITS)} m²·K/W apart, more than {OFFSETS_APART:g} times their"
-            " scatter, and what is wrong in all rows alike cannot set them apart: a cleaning left a deposit behind, or"
-            " a sensor stepped. The proposal counts from the zero of each run and does not contain it."
-        )
+        f"the offsets lie {number(apart, DIGITS)} m²·K/W apart, more than {OFFSETS_APART:g} times their scatter, and"
+        " what is wrong in all rows alike cannot set them apart: a cleaning left a deposit behind, or a sensor"
+        " stepped. The proposal counts from the zero of each run and does not contain it."
     ]
 
 
@@ -280,10 +285,6 @@ def _proposal(outcome: SurveyOutcome, page: Page) -> list[Block]:
         f" is that of the readings. It counts from the anchored zero, on {page.basis}. Other calculations take"
         " these results by name."
     )
-    reach = (
-        f"The proposal stands {_days(outcome.after)} after a cleaning; rows reach {_days(outcome.period)}."
-        f" {'Beyond the rows it is the model alone.' if outcome.after > outcome.period else ''}"
-    ).rstrip()
     runs = counted(sum(cycle.zero_rows > 0 for cycle in outcome.cycles), "run", "runs")
     spread = (
         f"It rests on {runs} of this unit: how runs differ from each other is not in the percentile, nor is what a"
@@ -292,5 +293,12 @@ def _proposal(outcome: SurveyOutcome, page: Page) -> list[Block]:
     return [
         Table(("Result", "Meaning", "Value, m²·K/W"), rows),
         Paragraph(words),
-        Bullets((reach, spread)),
+        Bullets((_reach(outcome), spread)),
     ]
+
+
+def _reach(outcome: SurveyOutcome) -> str:
+    words = (
+        f"The proposal stands {_days(outcome.after)} after a cleaning; rows reach {_days(outcome.period)}."
+    )
+    return f"{words} Beyond the rows it is the model alone." if outcome.after > outcome.period else words

@@ -10,13 +10,14 @@ from calcbook.formulas.names import written_name
 from calcbook.quantities import QuantityKind, in_unit
 from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Table
 from calcbook.record.numbers import NOT_KNOWN, fixed, number, percent, report_unit, unit_text
-from calcbook.record.page import Page
+from calcbook.record.page import Page, case_name
 
 STANDARD_DIGITS = 2
 SLOPE_DIGITS = 4
 FACTOR_PLACES = 3
 # Above this share, samples without an answer or outside a limit are a caution.
 MOST_UNSAID = 0.001
+AT_STATED = " at the stated values"
 NOT_SEPARABLE = "not separable"
 
 
@@ -30,6 +31,8 @@ def uncertainty(page: Page) -> list[Block]:
     cautions = _cautions(found)
     if cautions:
         blocks.append(Bullets(cautions))
+    if found.elsewhere:
+        blocks += _elsewhere(found, page)
     for budget in found.budgets:
         blocks += _budget(budget, page)
     return [*blocks, *_sampled(found, page)]
@@ -56,18 +59,52 @@ def certainty_words(found: Uncertainty | None, item: CriterionResult) -> str:
     The probability is that of the samples; without samples, whether the limit lies within the expanded
     uncertainty of the result.
     """
-    if found is None or found.case:
+    if found is None or item.words:
         return ""
-    chances = found.sampling.chances if found.sampling is not None else ()
-    for chance in chances:
-        if chance.id == item.id:
-            answered = found.sampling.trials - found.sampling.unanswered if found.sampling is not None else 0
-            return f" at the stated values; holds with {_chance(chance.probability, answered)}"
-    result = item.that.split(">")[0].split("<")[0].strip()
-    for budget in found.budgets:
-        if budget.result == result and abs(item.margin) < budget.expanded:
-            return " at the stated values; the limit lies within the expanded uncertainty"
-    return ""
+    if item.case == found.case and found.sampling is not None:
+        for chance in found.sampling.chances:
+            if chance.id == item.id:
+                answered = found.sampling.trials - found.sampling.unanswered
+                lacking = _lacking(missing_terms(found), ", without")
+                return f"{AT_STATED}; holds with {_chance(chance.probability, answered)}{lacking}"
+    known = _expanded(found, item)
+    if known is None:
+        return f"{AT_STATED}; its uncertainty is not worked out"
+    expanded, missing = known
+    if abs(item.margin) < expanded:
+        return f"{AT_STATED}; the limit lies within the expanded uncertainty"
+    return _lacking(missing, f"{AT_STATED}; its uncertainty lacks")
+
+
+def result_of(item: CriterionResult) -> str:
+    """The name of what a criterion judges."""
+    return item.that.split(">")[0].split("<")[0].strip()
+
+
+def _expanded(found: Uncertainty, item: CriterionResult) -> tuple[float, tuple[str, ...]] | None:
+    """The expanded uncertainty of what a criterion judges, and the terms that have no part in it."""
+    result = result_of(item)
+    if item.case == found.case:
+        missing = missing_terms(found)
+        spreads = {
+            name: (budget.expanded, missing)
+            for budget in found.budgets
+            for name in (budget.result, *budget.also)
+        }
+    else:
+        spreads = {
+            one.result: (one.expanded, one.missing) for one in found.elsewhere if one.case == item.case
+        }
+    return spreads.get(result)
+
+
+def missing_terms(found: Uncertainty) -> tuple[str, ...]:
+    """The terms whose method has no part in the uncertainty."""
+    return tuple(dict.fromkeys(item.term for item in found.left_out))
+
+
+def _lacking(terms: tuple[str, ...], words: str) -> str:
+    return f"{words} the part of {', '.join(terms)}" if terms else ""
 
 
 # --- what it is made of -----------------------------------------------------------------------------
@@ -122,6 +159,38 @@ def _summary(found: Uncertainty, page: Page) -> Table:
         ),
         tuple(_summary_row(budget, page) for budget in found.budgets),
     )
+
+
+def _elsewhere(found: Uncertainty, page: Page) -> list[Block]:
+    """What the criteria judge in the cases that have no budget of their own."""
+    rows = []
+    for one in found.elsewhere:
+        unit = _unit(one.kind, page)
+        standard = in_unit(one.standard, _step(unit))
+        rows.append(
+            (
+                case_name(one.case),
+                one.result,
+                beside(_value(one.value, one.kind, unit), standard),
+                unit_text(unit),
+                number(standard, STANDARD_DIGITS),
+                number(in_unit(one.expanded, _step(unit)), STANDARD_DIGITS),
+                ", ".join(one.missing) or "none",
+            )
+        )
+    columns = (
+        "Case",
+        "Result",
+        "Value",
+        "Unit",
+        "Standard uncertainty",
+        f"Expanded uncertainty, {_coverage(found)}",
+        "Terms without a part",
+    )
+    return [
+        Paragraph("What the criteria judge in the other cases, by first order:"),
+        Table(columns, tuple(rows)),
+    ]
 
 
 def _of_inputs(found: Uncertainty) -> str:
@@ -183,7 +252,7 @@ def _budget(budget: Budget, page: Page) -> list[Block]:
         f"Contribution{_of_unit(unit)}",
         "Share of the variance",
     )
-    heading = Heading(4, f"Budget of {budget.result}")
+    heading = Heading(4, f"Budget of {', '.join((budget.result, *budget.also))}")
     if not budget.rows:
         return [heading, Paragraph("It depends on no figure with a tolerance.")]
     # Rounded before it is ranked, so that contributions that are alike keep the order of the file.
