@@ -9,18 +9,16 @@ from __future__ import annotations
 
 import json
 import math
-import re
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 from pathlib import Path
 
-from calcbook.calcfile.links import CURRENT, Link, LinkText
+from calcbook.calcfile.links import CURRENT, Link, LinkText, number_of
 from calcbook.documents import Mapping as MappingNode
-from calcbook.documents import read_file
-from calcbook.faults import Fault, Faults, nearest_names
+from calcbook.documents import read_file, read_text
+from calcbook.faults import Collector, Fault, Faults, nearest_names
 from calcbook.seals import FINAL, ISSUED, RESULTS, check_seal, issued_altered, read_seal
 
-NUMBER_LINE = re.compile(r"^\s*(?:calculation:\s*\{.*?)?number:\s*[\"']?([A-Za-z0-9_.-]+)", re.MULTILINE)
 DIGITS = 10
 
 
@@ -48,11 +46,11 @@ class Links:
     def __call__(self, text: LinkText) -> Link:
         """The link behind a `from:`. Raises ``Faults``: link-source-unknown, link-revision-unknown,
         issued-altered, link-result-unknown, and the faults of a source that is solved in turn."""
-        file = self._file(text.calculation)
+        file = self._file(text)
         if text.revision:
             return self._pinned(text, file)
         if file is None:
-            known = sorted(self._numbers())
+            known = sorted({number for number, _ in self._numbers()})
             raise _fault(
                 "link-source-unknown",
                 text,
@@ -136,20 +134,29 @@ class Links:
         folder = self.output / number / ISSUED
         return sorted(path.name for path in folder.iterdir() if path.is_dir()) if folder.is_dir() else []
 
-    def _file(self, number: str) -> Path | None:
-        return self._numbers().get(number)
+    def _file(self, text: LinkText) -> Path | None:
+        """The calculation file of a number. Raises ``Faults``: number-in-two-files."""
+        files = [path for number, path in self._numbers(text.calculation) if number == text.calculation]
+        if len(files) > 1:
+            raise _fault(
+                "number-in-two-files",
+                text,
+                f"the number {text.calculation} stands in two files",
+                ", ".join(path.name for path in files),
+                "each number once in a book",
+            )
+        return files[0] if files else None
 
-    def _numbers(self) -> dict[str, Path]:
-        """The calculation files of the folder by their number, from their first lines."""
-        numbers: dict[str, Path] = {}
+    def _numbers(self, wanted: str = "") -> Iterator[tuple[str, Path]]:
+        """The calculation files of the folder with the number of their title block; those that name ``wanted``."""
         for path in sorted(self.folder.glob("*.yaml")):
             try:
-                found = NUMBER_LINE.search(path.read_text(encoding="utf-8")[:4000])
-            except (OSError, UnicodeDecodeError):
+                text = path.read_text(encoding="utf-8")
+                number = number_of(read_text(text, path.name, Collector()).root) if wanted in text else ""
+            except (OSError, UnicodeDecodeError, Faults):
                 continue
-            if found:
-                numbers.setdefault(found.group(1), path)
-        return numbers
+            if number:
+                yield number, path
 
 
 def figure(value: float, unit: str) -> str:

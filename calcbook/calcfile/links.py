@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import dataclass
 
+from calcbook.documents import Mapping, Node, Scalar
 from calcbook.faults import Place
 
 CURRENT = "current"
@@ -33,6 +34,13 @@ class Link:
     digest: str
     text: str
     state: str
+
+
+def number_of(root: Node) -> str:
+    """The number that stands in a calculation file's title block; empty where there is none."""
+    head = root.get("calculation") if isinstance(root, Mapping) else None
+    number = head.get("number") if isinstance(head, Mapping) else None
+    return number.text if isinstance(number, Scalar) else ""
 
 
 # Gives the link behind a `from:`. Raises ``Faults`` for a source or result that cannot be had.

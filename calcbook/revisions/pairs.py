@@ -5,11 +5,12 @@ from __future__ import annotations
 from collections.abc import Sequence
 from pathlib import Path
 
+from calcbook.calcfile.links import number_of
 from calcbook.documents import read_file
 from calcbook.faults import Collector, Fault, Faults, Place
 from calcbook.revisions.comparing import Comparison, compare
 from calcbook.revisions.lifecycle import VOID, lifecycle_of
-from calcbook.revisions.sides import OUTPUT, Side, links_of, load_issued, load_side, number_of, output_of
+from calcbook.revisions.sides import OUTPUT, Side, links_of, load_issued, load_side, output_of
 from calcbook.revisions.signoffs import printed_name
 from calcbook.seals import issued_copies
 

@@ -270,12 +270,6 @@ def links_of(root: Node) -> tuple[LinkOf, ...]:
     return tuple(found)
 
 
-def number_of(root: Node) -> str:
-    """The number that stands in a calculation file's title block; empty where there is none."""
-    head = root.get("calculation") if isinstance(root, MappingNode) else None
-    return _word(head, "number") if isinstance(head, MappingNode) else ""
-
-
 def _word(node: MappingNode, key: str) -> str:
     value = node.get(key)
     return value.text if isinstance(value, Scalar) else ""

@@ -104,6 +104,26 @@ def test_a_link_takes_nothing_from_an_issued_copy_that_was_altered(tmp_path: Pat
     assert solve_file(fed).base.results["U_service"].value == before
 
 
+def test_a_link_finds_its_source_by_the_number_of_the_title_alone(book: Path) -> None:
+    """A text that names the number, in a file that stands first, is no calculation of that number."""
+    before = solve_file(book / "fed.yaml").base.inputs["given/T_hot"]
+    other = GOOD.replace("number: WC-101", "number: OTHER-1").replace("74 degC", "61 degC")
+    (book / "aa.yaml").write_text(
+        f"# number: S-1\n{other}notes: |\n  number: S-1 of last year\n", encoding="utf-8"
+    )
+    first = f"purpose: |\n  number: S-1 of last year.\n{other.split('purpose:')[0]}"
+    (book / "ab.yaml").write_text(first, encoding="utf-8")
+    assert solve_file(book / "fed.yaml").base.inputs["given/T_hot"] == before
+
+
+def test_a_link_to_a_number_in_two_files_is_a_fault(book: Path) -> None:
+    shutil.copy(book / "source.yaml", book / "again.yaml")
+    with pytest.raises(Faults) as caught:
+        solve_file(book / "fed.yaml")
+    (fault,) = caught.value.faults
+    assert (fault.code, fault.found) == ("number-in-two-files", "again.yaml, source.yaml")
+
+
 def test_calculations_that_take_from_each_other_in_a_long_row_are_told(tmp_path: Path) -> None:
     count = 40
     for number in range(count):
