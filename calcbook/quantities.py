@@ -226,12 +226,19 @@ class QuantityKind(NamedTuple):
 
     def allows(self, value: float) -> bool:
         """Whether the quantity can have an SI value, by its sign and its definition."""
+        return bool(self.allowed(value))
+
+    def allowed(self, values: Any) -> Any:
+        """``allows`` for a figure or an array of them; one that is not known cannot be."""
         least, most = self.bounds
-        above = value > 0.0 if self.sign == "positive" else value >= 0.0
-        if self.scale == "point" and value <= 0.0:
-            return False
-        is_there = least <= value <= most and (not self.whole or float(value).is_integer())
-        return (above or self.sign == "any" or self.reading == "gauge") and is_there
+        found = (values >= least) & (values <= most)
+        if self.whole:
+            found = found & (values % 1.0 == 0.0)
+        if self.scale == "point" or (self.sign == "positive" and self.reading != "gauge"):
+            return found & (values > 0.0)
+        if self.sign != "any" and self.reading != "gauge":
+            return found & (values >= 0.0)
+        return found
 
 
 class Quantity(NamedTuple):

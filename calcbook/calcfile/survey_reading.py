@@ -288,10 +288,14 @@ class _Reader:
         )
 
     def fits(self, unit: Scalar, quantity: Quantity, given: Given) -> bool:
-        """Whether a unit is one of the given's own quantity: a point of a scale for a temperature."""
+        """Whether a unit is one of the given's own quantity.
+
+        A column in degC or degF is one of temperatures: its given must be one too, which a figure in K does not say.
+        """
         base = given.value.quantity
         assert base is not None
-        if quantity.dimension == base.dimension and quantity.on_base_of(base):
+        is_point = quantity.reading != "point" or base.reading == "point"
+        if quantity.dimension == base.dimension and quantity.on_base_of(base) and is_point:
             return True
         self.collector.add(
             "unit-dimension",

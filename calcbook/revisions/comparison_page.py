@@ -56,7 +56,10 @@ def short_blocks(comparison: Comparison) -> tuple[Block, ...]:
     link."""
     old = comparison.old
     blocks: list[Block] = [
-        Paragraph(f"Compared with revision {old.revision} ({old.state}), digest {old.digest.whole}.")
+        Paragraph(
+            f"Compared with revision {old.revision} ({old.state}), digest of its displayed results"
+            f" {old.signed_digest.results}."
+        )
     ]
     if comparison.is_empty:
         return (*blocks, Paragraph("Nothing changed."))
@@ -73,16 +76,17 @@ def short_blocks(comparison: Comparison) -> tuple[Block, ...]:
 
 def _head(comparison: Comparison) -> list[Block]:
     sides = (comparison.old, comparison.new)
+    digests = [side.signed_digest for side in sides]
     rows = [
         ("Calculation", *(side.calculation.number for side in sides)),
         ("Revision", *(side.revision for side in sides)),
         ("Side", *(side_name(side) for side in sides)),
         ("State", *(side.state for side in sides)),
         ("Confirmation", *(_confirmation(side) for side in sides)),
-        ("Digest", *(side.digest.whole for side in sides)),
-        ("Digest of the file's meaning", *(side.digest.meaning for side in sides)),
-        ("Digest of the cards used", *(side.digest.cards for side in sides)),
-        ("Digest of the displayed results", *(side.digest.results for side in sides)),
+        ("Digest", *(digest.whole or "stands in the issued record" for digest in digests)),
+        ("Digest of the file's meaning", *(digest.meaning for digest in digests)),
+        ("Digest of the cards used", *(digest.cards for digest in digests)),
+        ("Digest of the displayed results", *(digest.results for digest in digests)),
         ("Software of the recorded results", *(_software_of(side) for side in sides)),
         ("Software of this comparison", software_line(), software_line()),
     ]

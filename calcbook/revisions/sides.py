@@ -68,6 +68,19 @@ class Side:
     keeper: object = field(default=None, repr=False, compare=False)
 
     @property
+    def signed_digest(self) -> Digest:
+        """The digest that people signed: of an issued copy as it was recorded, though this software may give another.
+
+        The whole is empty where it is not that of the recorded parts.
+        """
+        found = (self.results or {}).get("digest")
+        if self.state == NOT_ISSUED or not isinstance(found, Mapping):
+            return self.digest
+        parts = [str(found.get(part, "")) for part in ("meaning", "cards", "results")]
+        same = parts == [self.digest.meaning, self.digest.cards, self.digest.results]
+        return Digest(self.digest.whole if same else "", *parts)
+
+    @property
     def recorded(self) -> dict[str, float]:
         """Results of the base case as they were recorded, by name, SI."""
         found = (self.results or {}).get("results", {})

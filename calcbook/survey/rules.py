@@ -13,11 +13,13 @@ import numpy as np
 
 from calcbook.calcfile.survey import Survey
 from calcbook.chain.survey_outcome import RuleCount
+from calcbook.chain.types import Input
 from calcbook.quantities import unit_factor
 from calcbook.survey.rows import Rows
 
 Array = np.ndarray
 UNREADABLE = "unreadable"
+SIGN_WORDS = {"positive": "above zero", "not negative": "zero or above", "any": "any number"}
 NOT_APPLIED = "not applied: no limit is stated"
 FLOWS = frozenset(unit_factor(unit)[1] for unit in ("kg/s", "m^3/s", "m/s"))
 
@@ -74,11 +76,12 @@ class Sieve:
         self.rules.append(RuleCount(name, rejects, limit, count, first))
 
 
-def sift(rows: Rows, survey: Survey, ends: Ends, reference: Mapping[str, float]) -> Sieve:
+def sift(rows: Rows, survey: Survey, ends: Ends, givens: Mapping[str, Input]) -> Sieve:
     """The rows after every rule that the measured figures alone decide.
 
-    ``reference`` are the givens of the base case by symbol, to which flows are held.
+    ``givens`` are those of the base case by symbol: what each can be, and what flows are held to.
     """
+    reference = {symbol: item.value for symbol, item in givens.items()}
     sieve = Sieve(rows, np.ones(len(rows), dtype=bool))
     readable = np.isfinite(rows.times)
     for figures in rows.columns.values():
@@ -89,6 +92,12 @@ def sift(rows: Rows, survey: Survey, ends: Ends, reference: Mapping[str, float])
         "a time that a row above has",
         "the first row of a time stays",
         _repeated(sieve),
+    )
+    sieve.reject(
+        "what it can be",
+        "a figure that the quantity of its given cannot have",
+        "; ".join(_can_be(givens[symbol]) for symbol in survey.columns),
+        _impossible(rows, givens),
     )
     for symbol, column in survey.columns.items():
         figures = rows.columns[symbol]
@@ -111,6 +120,24 @@ def sift(rows: Rows, survey: Survey, ends: Ends, reference: Mapping[str, float])
     _reject_unsteady(sieve, survey, ends)
     _reject_flows(sieve, survey, reference)
     return sieve
+
+
+def _can_be(item: Input) -> str:
+    """What a measured given can be, in words: its sign, and what it cannot pass by its definition."""
+    kind = item.kind
+    words = "above absolute zero" if kind.scale == "point" else SIGN_WORDS[kind.sign]
+    if kind.reading == "gauge":
+        words = SIGN_WORDS["any"]
+    if kind.least or kind.most:
+        words = f"{kind.least or 'any'} to {kind.most or 'any'}"
+    return f"{item.symbol} {'a whole number, ' if kind.whole else ''}{words}"
+
+
+def _impossible(rows: Rows, givens: Mapping[str, Input]) -> Array:
+    broken = np.zeros(len(rows), dtype=bool)
+    for symbol, figures in rows.columns.items():
+        broken |= ~np.asarray(givens[symbol].kind.allowed(figures))
+    return broken
 
 
 def _repeated(sieve: Sieve) -> Array:

@@ -105,8 +105,8 @@ class _Survey:
         if ends is None or self.model is None:
             return None
         rows = read_rows(survey)
-        reference = {symbol: chain.inputs[f"given/{symbol}"].value for symbol in chain.calculation.givens}
-        sieve = sift(rows, survey, ends, reference)
+        givens = {symbol: chain.inputs[f"given/{symbol}"] for symbol in chain.calculation.givens}
+        sieve = sift(rows, survey, ends, givens)
         kept = self.kept = self.solved_rows(rows, sieve)
         fitted = np.flatnonzero(kept.anchored)
         if len(fitted) < len(self.model.parameters) + len(self.starts) + FEWEST_FREE:
