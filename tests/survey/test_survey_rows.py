@@ -8,10 +8,11 @@ from pathlib import Path
 import numpy as np
 import pytest
 from history import DAY, Truth, cells, drawn, history, spoiled
-from survey_calculations import SURVEY, surveyed_alone
+from survey_calculations import COOLER, SURVEY, solved_survey, surveyed_alone
 
 from calcbook.chain.outcome import Solved
 from calcbook.chain.survey_outcome import SurveyOutcome
+from calcbook.faults import Faults
 from calcbook.interface import record_text
 from calcbook.survey.rows import read_moments, read_numbers
 
@@ -63,6 +64,32 @@ def test_every_spoiled_row_is_rejected_by_its_rule(outcome_of: Outcomes, whole: 
     assert found["steady state"] >= 4
     assert adds_up(outcome)
     assert [(gap.begins, round(gap.length / DAY)) for gap in outcome.gaps] == [("2025-06-11 06:00", 15)]
+
+
+def test_a_figure_that_its_quantity_cannot_have_is_rejected(
+    outcome_of: Outcomes, whole: list[list[str]]
+) -> None:
+    """A sensor that counts backwards, and one below absolute zero, where no range is stated."""
+    rows = [list(row) for row in whole]
+    rows[30][5], rows[50][1] = "-14.2", "-300"
+    without = SPOILED_SURVEY.replace(" range: 2 kg/s .. 30 kg/s,", "").replace(
+        " range: 40 degC .. 110 degC,", ""
+    )
+    outcome = outcome_of(rows, without)
+    assert counts(outcome)["what it can be"] == 2
+    assert adds_up(outcome)
+    (rule,) = [rule for rule in outcome.rules if rule.id == "what it can be"]
+    assert rule.first == "row 31" and "m_hot zero or above" in rule.limit
+
+
+def test_a_column_of_temperatures_wants_a_given_that_is_one(tmp_path: Path, whole: list[list[str]]) -> None:
+    """A figure in K does not say whether it is a temperature or a difference; degC would add 273.15 K to one."""
+    old = "T_hi:   {value: 80 degC"
+    assert COOLER.count(old) == 1
+    with pytest.raises(Faults) as caught:
+        solved_survey(tmp_path, whole, cooler=COOLER.replace(old, "T_hi:   {value: 353.15 K"))
+    (fault,) = caught.value.faults
+    assert (fault.code, fault.expected) == ("unit-dimension", "a unit like that of 353.15 K")
 
 
 def test_the_rule_names_the_first_row_it_rejects(outcome_of: Outcomes, whole: list[list[str]]) -> None:
