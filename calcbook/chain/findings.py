@@ -9,7 +9,7 @@ from typing import Any
 
 import numpy as np
 
-from calcbook.calcfile.calculation import Derived
+from calcbook.calcfile.calculation import Derived, Term
 from calcbook.chain.checks import NOT_EVALUABLE, OUTSIDE, STATES, WITHIN, apart
 from calcbook.chain.fluids import PropertyOperation
 from calcbook.chain.gaps import gaps
@@ -127,13 +127,14 @@ def _check_derived(chain: Chain, values: Mapping[str, Any], collector: Collector
     kelvin = vocabulary()["temperature"].dimension
     has_temperatures = any(kind.dimension == kelvin for kind in chain.derived_kinds.values())
     moves = _moves_of_derived(chain, values) if has_temperatures else {}
+    cannot_be = dict(impossible_derived(chain, values))
     for symbol, item in chain.calculation.derived.items():
         if f"derived/{symbol}" not in values:
             continue
         kind, value = chain.derived_kinds.get(symbol), float(values[f"derived/{symbol}"])
         if kind is not None and kind.dimension == kelvin:
             _check_scale(item, kind, moves[symbol], collector, case)
-        if not _has_size(value) or (kind is not None and not kind.allows(value)):
+        if cannot_be[symbol]:
             what = f"the {f'{kind.name} ' if kind is not None else ''}{symbol} that is derived here"
             must = _must(kind) if kind is not None else ""
             unit = kind.unit if kind is not None else si_unit(chain.dimensions[f"derived/{symbol}"])
@@ -144,9 +145,42 @@ def _must(kind: QuantityKind) -> str:
     return " above absolute zero" if kind.scale == "point" else SIGNS.get(kind.sign, "")
 
 
-def _has_size(value: float) -> bool:
+def impossible_derived(chain: Chain, values: Mapping[str, Array]) -> Iterator[tuple[str, Array]]:
+    """The symbols that are derived, and the samples in which each is what a quantity of its kind cannot be."""
+    for symbol in chain.calculation.derived:
+        figures = values.get(f"derived/{symbol}")
+        if figures is not None:
+            kind = chain.derived_kinds.get(symbol)
+            can_be = kind.allowed(figures) if kind is not None else True
+            yield symbol, ~(_has_size(figures) & can_be)
+
+
+def impossible_factors(chain: Chain, values: Mapping[str, Array]) -> Iterator[tuple[Term, Array, Array]]:
+    """The terms whose stated coefficient scales with something: the factor, and where it is not finite above zero."""
+    for term in (term for term in chain.calculation.every_term if term.scales_with is not None):
+        known = dict(values)
+        steps = [step for step in film_steps(chain) if step.id == factor_of_term(term)]
+        run([step for step in steps if known.keys() >= set(step.inputs.values())], known)
+        factor = np.asarray(known.get(factor_of_term(term), 1.0))
+        yield term, factor, ~(_has_size(factor) & (factor > 0.0))
+
+
+def factor_of_term(term: Term) -> str:
+    """The id of the factor that a stated coefficient is scaled with."""
+    return f"{term.name}/factor"
+
+
+def figures_to_hold(chain: Chain) -> set[str]:
+    """The ids of what samples are held to by ``impossible_derived`` and ``impossible_factors``."""
+    calculation = chain.calculation
+    factors = {factor_of_term(term) for term in calculation.every_term if term.scales_with is not None}
+    return factors | {f"derived/{symbol}" for symbol in calculation.derived}
+
+
+def _has_size(values: Any) -> Array:
     """Whether a figure is finite, and not beyond everything that this trade calculates with."""
-    return value == 0.0 or SMALLEST_DERIVED <= abs(value) <= LARGEST_DERIVED
+    size = np.abs(values)
+    return (size == 0.0) | ((size >= SMALLEST_DERIVED) & (size <= LARGEST_DERIVED))
 
 
 def _moves_of_derived(chain: Chain, values: Mapping[str, Any]) -> dict[str, float]:
@@ -200,16 +234,11 @@ def _check_scale(item: Derived, kind: QuantityKind, moves: float, collector: Col
 
 def _check_factors(chain: Chain, values: Mapping[str, Any], collector: Collector, case: str) -> None:
     """That what a stated coefficient scales with is a finite factor above zero."""
-    for term in (term for term in chain.calculation.every_term if term.scales_with is not None):
-        known = {**values}
-        steps = [step for step in film_steps(chain) if step.id == f"{term.name}/factor"]
-        run([step for step in steps if known.keys() >= set(step.inputs.values())], known)
-        factor = float(known.get(f"{term.name}/factor", 1.0))
-        if not (_has_size(factor) and factor > 0.0):
+    for term, factor, cannot_be in impossible_factors(chain, values):
+        if cannot_be:
             what = f"the factor that {term.name} scales with"
-            _report_derived(
-                term.place_of("scales with"), what, factor, "1", SIGNS["positive"], collector, case
-            )
+            must = SIGNS["positive"]
+            _report_derived(term.place_of("scales with"), what, float(factor), "1", must, collector, case)
 
 
 def _report_derived(

@@ -37,6 +37,8 @@ from calcbook.chain.findings import (
     ending_properties,
     ends_of,
     film_steps,
+    impossible_derived,
+    impossible_factors,
     known_or_none,
     stream_phases,
     stream_states,
@@ -473,6 +475,7 @@ def _mark_states(
 ) -> None:
     """Samples whose record would have a fault of state, and those in which a stream has another phase."""
     mark_walls(chain, values, samples)
+    mark_derived(chain, values, samples)
     for state in chain.streams.values():
         if state.temperature not in values:
             continue
@@ -498,6 +501,14 @@ def mark_walls(chain: Chain, values: Mapping[str, Array], samples: Samples) -> N
         if after.diameter:
             inner, outer = np.asarray(values[before.diameter]), np.asarray(values[after.diameter])
             samples.mark(~((outer > inner) & (inner > 0.0)), "the wall is turned inside out")
+
+
+def mark_derived(chain: Chain, values: Mapping[str, Array], samples: Samples) -> None:
+    """Samples in which a derived quantity, or the factor of a stated coefficient, is what it cannot be."""
+    for symbol, cannot_be in impossible_derived(chain, values):
+        samples.mark(cannot_be, f"the derived {symbol} cannot be")
+    for term, _, cannot_be in impossible_factors(chain, values):
+        samples.mark(cannot_be, f"the factor that {term.name} scales with cannot be")
 
 
 def mark_directions(here: Group, opposite: Group, values: Mapping[str, Array], samples: Samples) -> None:

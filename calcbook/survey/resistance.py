@@ -13,6 +13,8 @@ import numpy as np
 
 from calcbook.chain.checks import OUTSIDE, check_states
 from calcbook.chain.factors import with_factors
+from calcbook.chain.findings import figures_to_hold
+from calcbook.chain.samples import Samples, mark_derived
 from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.solve import PIECE, Solution, solve
 from calcbook.chain.types import CLEAN, Chain, ChainCheck
@@ -120,13 +122,18 @@ def resistances(chain: Chain, columns: Mapping[str, Array], loss: float) -> Foun
     way, limits = _way(chain), _range_limits(chain)
     wanted = {name for name in way.bound.values() if name}
     asked = {name for limit in limits for name in limit.names}
+    held = figures_to_hold(chain)
     shorter = _only(chain, wanted)
     count = len(next(iter(columns.values())))
     found = []
     for start in range(0, count, PIECE):
         part = {symbol: figures[start : start + PIECE] for symbol, figures in columns.items()}
-        solution = solve(shorter, inputs_of(chain, part), CLEAN, keep=wanted | asked)
-        found.append(_found(way, limits, solution, loss, min(PIECE, count - start)))
+        solution = solve(shorter, inputs_of(chain, part), CLEAN, keep=wanted | asked | held)
+        size = min(PIECE, count - start)
+        states = Samples(np.zeros(size, dtype=int))
+        mark_derived(chain, solution.values, states)
+        solution.converged = solution.converged & (states.missing == 0)
+        found.append(_found(way, limits, solution, loss, size))
     return joined(found)
 
 

@@ -12,8 +12,8 @@ from calcbook.chain.about_state import about_state
 from calcbook.chain.checks import NOT_EVALUABLE, OUTSIDE, check_states
 from calcbook.chain.completing import completed
 from calcbook.chain.ends import PLACES, end_states, has_ends
-from calcbook.chain.findings import ends_of, has_phase_to_keep
-from calcbook.chain.samples import Samples, mark_directions, mark_walls
+from calcbook.chain.findings import ends_of, figures_to_hold, has_phase_to_keep
+from calcbook.chain.samples import Samples, mark_derived, mark_directions, mark_walls
 from calcbook.chain.solve import UNKNOWNS, Solution, closed
 from calcbook.chain.types import Branch, Chain, ChainCheck, Group, Layer, StreamState
 from calcbook.properties import FluidAtPressure
@@ -266,6 +266,7 @@ class ChainModel:
             *(name for one in self.limits for name in one.needs),
             *(name for one in self.phases for name in (one.temperature, one.pressure)),
             *(surface.diameter for surface in chain.surfaces),
+            *figures_to_hold(chain),
             *(name for group in (chain.inner, chain.outer) for name in _bulks(group)),
         }
         self.looks_at_ends = any(one.place for one in self.limits) or self.states != self.conditions
@@ -310,6 +311,7 @@ class ChainModel:
         states = Samples(np.zeros(size, dtype=int))
         first = next(iter(solutions.values())).values
         mark_walls(self.chain, first, states)
+        mark_derived(self.chain, first, states)
         for here, opposite in ((self.chain.inner, self.chain.outer), (self.chain.outer, self.chain.inner)):
             mark_directions(here, opposite, first, states)
         possible &= states.missing == 0

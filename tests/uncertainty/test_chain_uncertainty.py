@@ -547,6 +547,28 @@ report: {U on: outside}
     assert row.samples / samples.trials == pytest.approx(expected, abs=3.0 * deviation + 1e-3)
 
 
+def test_samples_whose_derived_figure_cannot_be_have_no_answer(tmp_path) -> None:
+    """R_f = R_a - R_b is below zero where R_b, even within 8e-5 of 9e-5, is above 1e-4: 7 of 16."""
+    body = """\
+givens:
+  R_a: {value: 1e-4 m^2 K/W, is: both deposits, source: test}
+  R_b: {value: 9e-5 m^2 K/W, is: deposit of the other side, source: test}
+derived: {R_f: {is: deposit, relation: R_a - R_b}}
+geometry: {shape: plane, area: {value: 3 m^2, source: test}}
+resistances:
+  - {name: inner film, kind: film, coefficient: {value: 2000 W/(m^2 K), source: test}, on: inside}
+  - {name: deposit, kind: fouling, resistance: R_f, on: inside}
+  - {name: wall, kind: wall, thickness: {value: 2 mm, source: test}, conductivity: {value: 16 W/(m K), source: test}}
+  - {name: outer film, kind: film, coefficient: {value: 500 W/(m^2 K), source: test}, on: outside}
+report: {U on: outside}
+"""
+    found = solved(tmp_path, with_tolerance(body, R_b="8e-5 m^2 K/W"), SAMPLED.format("U_service"))
+    samples = found.uncertainty.sampling
+    expected = 7.0 / 16.0
+    deviation = math.sqrt(expected * (1.0 - expected) / samples.trials)
+    assert samples.unanswered / samples.trials == pytest.approx(expected, abs=4.0 * deviation)
+
+
 # A counterflow cooler whose resistances are as they stand, whatever the temperatures.
 TWO_ENDS = """\
 givens:

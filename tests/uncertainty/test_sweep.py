@@ -171,3 +171,33 @@ def test_surfaces_at_the_ends_and_largest_allowances_are_swept(tmp_path: Path) -
             # The same circuits, closed from other starts: they agree to the rounding of a temperature.
             assert result.name == name
             assert result.values[row] == pytest.approx(other.base.results[name].value, rel=1e-11)
+
+
+# What the inspection found, less what the plant standard allows for the other side.
+LESS = WALL.replace(
+    "R_f:  {value: 0.0002 m^2 K/W, is: allowance, source: test}",
+    "R_a:  {value: 0.0003 m^2 K/W, is: both deposits, source: test}\n"
+    "      R_b:  {value: 0.0001 m^2 K/W, is: deposit of the other side, source: test}",
+).replace("    geometry:", "    derived: {R_f: {is: deposit, relation: R_a - R_b}}\n    geometry:")
+
+
+def test_a_derived_figure_that_cannot_be_has_no_answer_in_a_sweep(tmp_path: Path) -> None:
+    body = LESS + "    sweep: {R_b: {from: 0 m^2 K/W, to: 0.0006 m^2 K/W, steps: 7}, of: [U_service]}\n"
+    (result,) = solved_of(tmp_path, body).sweep.results
+    clean = 1.0 / 2000.0 + 0.002 / 16.0 + 1.0 / 500.0
+    expected = [1.0 / (clean + 0.0003 - 0.0001 * step) for step in range(4)]
+    assert list(result.values[:4]) == pytest.approx(expected)
+    assert all(math.isnan(value) for value in result.values[4:])
+
+
+def test_a_factor_of_a_flow_that_is_not_there_has_no_answer_in_a_sweep(tmp_path: Path) -> None:
+    body = WALL.replace(
+        "coefficient: h_2, on: outside}", "coefficient: h_2, on: outside, scales with: (m/m_ref)**0.6}"
+    ).replace(
+        "    geometry:",
+        "      m: {value: 2 kg/s, is: flow, source: test}\n"
+        "      m_ref: {value: 2 kg/s, is: flow of the stated coefficient, source: test}\n    geometry:",
+    )
+    sweep = solved_of(tmp_path, body + "    sweep: {m_ref: {from: 0 kg/s, to: 2 kg/s, steps: 3}}\n").sweep
+    assert [bool(reason) for reason in sweep.missing] == [True, False, False]
+    assert sweep.missing[0] == "the factor that outer film scales with cannot be"
