@@ -95,19 +95,21 @@ def _money(reader: Reader, node: Node | None, currency: str) -> Value | None:
     if not isinstance(scalar, Scalar) or _SYMBOL.fullmatch(scalar.text.strip()):
         return reader.value(node)
     text = " ".join(scalar.text.split())
-    plain, found = re.subn(rf"(?<![A-Za-z]){currency}(?![A-Za-z])", "1", text)
-    if not found:
+    found = re.fullmatch(rf"(?P<number>.+?) ?\b{currency}(?P<per>/.+)?", text)
+    per = found["per"] or "" if found is not None else ""
+    if found is None or re.search(rf"\b{currency}\b", per):
         reader.collector.add(
             "unit-missing",
             scalar.place,
             "an amount of money has its currency",
             found=shown(text),
-            expected=f"{text.split(' ')[0]} {currency}, or per unit of heat 1 {currency}/MWh",
+            expected=f"an amount such as 6800 {currency}, or a price such as 31 {currency}/MWh",
         )
         return None
     source, has_source = "", False
     if isinstance(node, MappingNode):
         fields = read_mapping(node, described.SOURCED, reader.collector, node.place)
         source, has_source = fields.text("source"), "source" in fields
-    value = reader.scalar_value(scalar._replace(text=re.sub(r" 1$", "", plain)), source, has_source)
+    plain = f"{found['number']} 1{per}" if per else found["number"]
+    value = reader.scalar_value(scalar._replace(text=plain), source, has_source)
     return replace(value, text=text)

@@ -116,3 +116,18 @@ def test_a_case_that_restates_more_is_told_to_be_not_judged(tmp_path: Path) -> N
     result = solved(tmp_path, body + TABLE + stated(f"{LOST} >= t_after") + cases)
     assert [len(case.criteria) for case in result.cases] == [1, 0]
     assert f"1 of 1 criterion met. Not judged in case other: {LOST}." in record_text(result)
+
+
+def test_a_currency_of_one_letter_is_not_the_exponent_of_a_number(tmp_path: Path) -> None:
+    body = COOLER + money(9000, 28)
+    assert body.count("EUR") == 3
+    other = body.replace("9000 EUR", "9E3 E").replace("EUR", "E")
+    found = [solved(tmp_path, text).base.results["cleaning_interval"].value for text in (body, other)]
+    assert found[0] == found[1]
+
+
+@pytest.mark.parametrize("amount", ["9000 1/EUR", "9000 EUR/EUR", "9000", "EUR 9000"])
+def test_an_amount_of_money_is_a_number_and_its_currency(tmp_path: Path, amount: str) -> None:
+    with pytest.raises(Faults) as caught:
+        solved(tmp_path, COOLER + money(9000, 28).replace("9000 EUR", amount))
+    assert {fault.code for fault in caught.value.faults} <= {"unit-missing", "unit-unknown"}
