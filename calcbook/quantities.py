@@ -202,7 +202,8 @@ class QuantityKind(NamedTuple):
 
     ``scale`` is "point" for a temperature (degC and degF are points of a scale), else "".
     ``reading`` is "absolute" or "gauge" for a pressure, else "". ``least`` and ``most`` are what it cannot pass by
-    its definition, as the vocabulary writes them, or "". ``whole`` says that it counts things that are not parted.
+    its definition, as the vocabulary writes them, or "". ``counts`` tells a number of things: "whole" where they are
+    not parted, "mean" where a mean of several may stand for them, else "".
     """
 
     name: str
@@ -217,7 +218,12 @@ class QuantityKind(NamedTuple):
     sign: Sign = "any"
     least: str = ""
     most: str = ""
-    whole: bool = False
+    counts: str = ""
+
+    @property
+    def whole(self) -> bool:
+        """Whether it counts things that are not parted."""
+        return self.counts == "whole"
 
     @property
     def bounds(self) -> tuple[float, float]:
@@ -1004,6 +1010,13 @@ def _check_sign(reading: _Reading, kind: QuantityKind) -> None:
 
 
 def _check_bounds(reading: _Reading, kind: QuantityKind, value: float) -> None:
+    if kind.counts and reading.unit.sole_name == "percent":
+        raise reading.fault(
+            "unit-dimension",
+            f"{kind.name} is a number of things, and no part of something",
+            "unit",
+            expected="a number",
+        )
     least, most = kind.bounds
     if not least <= value <= most:
         must = f"{kind.least} or more" if value < least else f"{kind.most} or less"
@@ -1043,12 +1056,12 @@ _SIGN_OF_NAME: dict[str, Sign] = {
     "gauge pressure": "any",
 }
 _ENTRY_KEYS = frozenset(
-    {"symbol", "unit", "digits", "meaning", "scale", "reading", "flag", "sign", "least", "most", "whole"}
+    {"symbol", "unit", "digits", "meaning", "scale", "reading", "flag", "sign", "least", "most", "counts"}
 )
 
 
 def kind_from_entry(name: str, entry: Mapping[str, str]) -> QuantityKind:
-    """A vocabulary entry (symbol, unit, digits, meaning; scale, reading, flag, sign, least, most, whole optional) as a kind.
+    """A vocabulary entry (symbol, unit, digits, meaning; scale, reading, flag, sign, least, most, counts optional) as a kind.
 
     The sign follows from the name or the unit where the entry does not state it. Raises ``ValueError`` for an
     entry that the vocabulary may not hold, and ``QuantityFault`` for its unit.
@@ -1070,7 +1083,7 @@ def kind_from_entry(name: str, entry: Mapping[str, str]) -> QuantityKind:
         sign=_sign(name, entry, dimension),
         least=entry.get("least", ""),
         most=entry.get("most", ""),
-        whole=_one_of(name, entry, "whole", ("", "false", "true")) == "true",
+        counts=_one_of(name, entry, "counts", ("", "whole", "mean")),
     )
 
 

@@ -794,3 +794,11 @@ def test_a_vocabulary_entry_becomes_a_kind() -> None:
 def test_a_wrong_vocabulary_entry_is_refused(change: dict[str, str]) -> None:
     with pytest.raises(ValueError, match="vocabulary entry 'length'"):
         kind_from_entry("length", {**ENTRIES["length"], **change})
+
+
+def test_a_number_of_things_is_at_least_one_and_no_part_of_something() -> None:
+    tubes = KINDS["tubes in parallel"]
+    assert read_quantity("66.5", tubes).value == 66.5
+    for text, code in (("6200 %", "unit-dimension"), ("0.5", "quantity-beyond-definition")):
+        assert fault_of(text, "tubes in parallel").code == code
+    assert fault_of("62.5", "tubes").code == "quantity-beyond-definition"

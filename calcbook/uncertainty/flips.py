@@ -32,7 +32,7 @@ from calcbook.chain.samples import (
 )
 from calcbook.chain.types import Chain, Input
 from calcbook.quantities import in_unit, read_tolerance, si_value
-from calcbook.uncertainty.lines import COUNTED, Reach, changes_fluid_state, reach
+from calcbook.uncertainty.lines import Reach, changes_fluid_state, reach
 
 Array = np.ndarray
 Key = tuple[str, str, str]
@@ -241,7 +241,7 @@ class _Search:
         for case in range(len(self.cases)):
             for name, item in self.chain.inputs.items():
                 now = float(self.base[name][case])
-                whole = item.kind.name in COUNTED and now == int(now)
+                whole = bool(item.kind.counts) and now == int(now)
                 for direction in (-1, 1) if item.is_given else ():
                     far = reach(item, now, direction, name in states)
                     self.lines.append(

@@ -11,23 +11,6 @@ import numpy as np
 from calcbook.chain.fluids import LiquidOperation, PropertyOperation
 from calcbook.chain.types import Chain, ChainStep, Group, Input, Layer
 
-# Quantities that count things: they step by whole numbers.
-COUNTED = frozenset(
-    (
-        "tubes in parallel",
-        "tubes",
-        "tube passes",
-        "tube rows",
-        "tube holes",
-        "plugged tubes",
-        "baffles",
-        "sealing strips",
-        "pass lanes",
-        "fins",
-        "ducts in parallel",
-        "channels in parallel",
-    )
-)
 # Without a flow there is no film: the search stays above zero.
 FLOWS = frozenset(("mass flow", "volume flow", "speed"))
 # Figures on one side of the present one, and how near and how far: a figure by its logarithm, a temperature in K.
@@ -55,7 +38,7 @@ def reach(item: Input, now: float, direction: int, changes_state: bool) -> Reach
         offsets = np.geomspace(NEAREST_KELVIN, FARTHEST_KELVIN, POINTS)
         figures = [now + direction * float(offset) for offset in offsets]
         return Reach(tuple(figure for figure in figures if figure > 0.0), f"{FARTHEST_KELVIN:g} K away")
-    if item.kind.name in COUNTED and now == int(now):
+    if item.kind.counts and now == int(now):
         return _whole(item, now, direction)
     factor, count = (STATE_FACTOR, STATE_POINTS) if changes_state else (FACTOR, POINTS)
     if now == 0.0:

@@ -13,7 +13,6 @@ from calcbook.chain.sweep_outcome import Axis, Sweep, SweptResult
 from calcbook.chain.types import Chain, Input
 from calcbook.faults import Collector, Place, nearest_names, shown
 from calcbook.quantities import Quantity, QuantityFault, as_kind, in_unit
-from calcbook.uncertainty.lines import COUNTED
 
 Array = np.ndarray
 ALWAYS = ("U_service", "U_clean")
@@ -33,7 +32,7 @@ def _axis(chain: Chain, swept: Swept, collector: Collector) -> Axis | None:
     if first is None or last is None:
         return None
     figures = np.linspace(first, last, swept.steps).tolist()
-    if item.kind.name in COUNTED and float(first).is_integer() and float(last).is_integer():
+    if item.kind.counts and float(first).is_integer() and float(last).is_integer():
         figures = list(dict.fromkeys(float(round(figure)) for figure in figures))
     unit = swept.first.unit_text
     point = item.kind.scale == "point"

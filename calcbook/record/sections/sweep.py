@@ -34,7 +34,7 @@ def sweep(page: Page) -> list[Block]:
     names = " and ".join(written_name(axis.input.symbol) for axis in found.axes)
     cases = " of the base case" if page.has_cases else ""
     words = (
-        f"{counted(found.samples, 'sample', 'samples')}{cases} over {names}, evenly spaced, the other figures as"
+        f"{counted(found.samples, 'sample', 'samples')}{cases} over {names}, {_spacing(found)}, the other figures as"
         f" they stand. {_counted_words(found)}"
     )
     blocks: list[Block] = [Heading(3, f"Sweep over {names}"), Paragraph(words)]
@@ -45,6 +45,16 @@ def sweep(page: Page) -> list[Block]:
             blocks += [Paragraph(_heading(page, result)), _grid(page, found, result)]
         blocks += _plot(page, found, result)
     return [*blocks, *_outside_lines(found)]
+
+
+def _spacing(found: Sweep) -> str:
+    """How the figures lie apart: evenly, but for numbers of things that are taken to whole ones."""
+    steps = [
+        [later - earlier for earlier, later in zip(axis.figures, axis.figures[1:], strict=False)]
+        for axis in found.axes
+    ]
+    even = all(max(row) - min(row) <= 1e-9 * max(map(abs, row)) for row in steps if row)
+    return "evenly spaced" if even else "by whole numbers, as evenly as they allow"
 
 
 def _counted_words(found: Sweep) -> str:
