@@ -14,6 +14,9 @@ from calcbook.faults import Place
 from calcbook.formulas import Relation
 from calcbook.quantities import Quantity
 
+# A share is stated no larger without a sign of per cent: 500 % (common practice).
+LARGEST_SHARE = 5.0
+
 
 @dataclass(frozen=True, slots=True)
 class Value:
@@ -369,6 +372,10 @@ class Calculation:
     def every_term(self) -> tuple[Term, ...]:
         """The terms of the resistance list, each followed by those that stand side by side in it."""
         return tuple(one for term in self.resistances for one in (term, *term.branches))
+
+    def term(self, name: str) -> Term:
+        """The term of a name, wherever it stands. Raises ``StopIteration`` where there is none."""
+        return next(term for term in self.every_term if term.name == name)
 
     def on_side(self, side: str) -> tuple[Term, ...]:
         """The terms between a fluid and the wall, of the side (inside, outside) that is named; none without a wall."""

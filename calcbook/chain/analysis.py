@@ -9,7 +9,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from calcbook.calcfile.calculation import Criterion
+from calcbook.calcfile.calculation import LARGEST_SHARE, Criterion
 from calcbook.chain.allowance import LARGEST_ALLOWANCE, largest_allowances
 from calcbook.chain.alternatives import alternatives, needs_temperatures
 from calcbook.chain.checks import apply_acceptances, evaluate_check, state_of_check
@@ -97,8 +97,6 @@ IMPLIED = {
 PLACES_SPREAD = 0.2
 # Slopes below this part of U are the rounding of sums that cancel.
 NOISE = 1e-13
-# A criterion on a share states no larger one without a sign of per cent: 500 % (common practice).
-LARGEST_SHARE = 5.0
 OPPOSITE = {">=": 1.0, ">": 1.0, "<=": -1.0, "<": -1.0}
 
 

@@ -20,6 +20,8 @@ Array = np.ndarray
 MAXIMUM_PASSES = 60
 # What comes out and what went in, relative: some hundred roundings of a figure.
 AGREEMENT = 1e-13
+# Below this part of the first value a figure agrees by that part: its own size is rounding.
+LEAST_PART = 0.1
 # The first value lies that far from the near end to the far end.
 FIRST_PART = 0.3
 
@@ -82,7 +84,7 @@ class _Passes:
         for _ in range(MAXIMUM_PASSES):
             came_out = self._came_out(put_in, active)
             gap = came_out - put_in
-            agreed = (np.abs(gap) <= AGREEMENT * np.abs(came_out)).all(axis=0)
+            agreed = (np.abs(gap) <= AGREEMENT * np.maximum(np.abs(came_out), self.least)).all(axis=0)
             result[:, active[agreed]] = came_out[:, agreed]
             open_still = ~agreed & np.isfinite(gap).all(axis=0)
             following = _joined(came_out, gap, before)
@@ -103,7 +105,10 @@ class _Passes:
         for item in self.open:
             near, far = (np.asarray(values[name], dtype=float) for name in (item.near, item.far))
             rows.append(np.broadcast_to(near + FIRST_PART * (far - near), (self.size,)))
-        return np.array(rows)
+        first = np.array(rows)
+        # A figure that comes to rest at zero agrees by the size from where it was looked for.
+        self.least = LEAST_PART * np.abs(first).max(axis=1, keepdims=True)
+        return first
 
     def _came_out(self, put_in: Array, active: Array) -> Array:
         inputs = {name: value[active] if value.ndim else value for name, value in self.inputs.items()}

@@ -211,6 +211,8 @@ def _walls(chain: Chain, solution: Solution) -> Iterator[_Wall]:
 def _film(chain: Chain, solution: Solution, group: Group, branch: Branch) -> Iterator[Figure]:
     kind = _kind(chain, solution, branch)
     yield Figure(branch.name, FILMS[kind], solution.number(branch_coefficient(group, branch.name)))
+    factor = chain.calculation.term(branch.name).values.get("method factor")
+    yield Figure(branch.name, "method factor", stated_figure(solution, factor, branch.name, "method factor"))
     if kind not in ("liquid", "gas") or branch.situation is None:
         return
     state = chain.streams[branch.stream]

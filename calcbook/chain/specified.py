@@ -9,6 +9,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from calcbook.calcfile.calculation import FoulingSpecified, Term
+from calcbook.calcfile.specified import ROUNDING
 from calcbook.chain.scope import Scope
 from calcbook.chain.types import CLEAN, SERVICE, ChainCheck, OpenFigure
 from calcbook.formulas import parse_expression
@@ -72,7 +73,17 @@ class SpecifiedFouling:
         """The specification lies where it can: a fault of the file otherwise."""
         figures = {SYMBOLS[self.specified.kind]: self._figure()}
         that = LIMITS[self.specified.kind]
-        return (self._stop("specified fouling", that, figures, "a deposit adds resistance, or none"),)
+        found = [self._stop("specified fouling", that, figures, "a deposit adds resistance, or none")]
+        shares = {
+            f"x_{number}": self.scope.value(value, "ratio", OWNER, f"share of {name}")
+            for number, (name, value) in enumerate(self.specified.split.items(), 1)
+        }
+        if shares:
+            that = f"abs({' + '.join(shares)} - 1) <= {ROUNDING!r}"
+            found.append(self._stop("split", that, shares, "the shares of the terms make one whole"))
+            least = f"min({', '.join(shares)})" if len(shares) > 1 else "x_1"
+            found.append(self._stop("share", f"{least} >= 0", shares, "a share is a part, or nothing"))
+        return tuple(found)
 
     def _stop(self, name: str, that: str, figures: dict[str, str], because: str) -> ChainCheck:
         limit = Limit(
