@@ -145,6 +145,7 @@ CODES: dict[str, str] = {
     "card-unchecked": "a card called checked without an outside check point",
     "check-points-missing": "a card with fewer than two check points",
     "check-point-failed": "a check point that the card does not meet",
+    "check-point-loose": "a check point that hardly any figure misses",
     "check-point-unknown": "a check point with a symbol that the card does not take",
     "choice-without-end": "a choice table whose last row has a condition",
     "limit-source-unknown": "a limit whose source is not among the sources",

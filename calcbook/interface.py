@@ -13,8 +13,9 @@ from calcbook.chain.analysis import NotConverged, analyse, judged_later
 from calcbook.chain.build import build
 from calcbook.chain.outcome import Solved
 from calcbook.chain.types import Chain
-from calcbook.faults import Collector, Fault, Faults, Place
-from calcbook.library import Library
+from calcbook.documents import Mapping, Scalar, read_file
+from calcbook.faults import Collector, Fault, Faults, Place, shown
+from calcbook.library import CARDS, Library
 from calcbook.links import ISSUED, Links, Source
 from calcbook.rating.rate import rated
 from calcbook.uncertainty.flips import distances_to_flip
@@ -146,6 +147,7 @@ def source_of(solved: Solved) -> Source:
 def _solved(
     calculation: Calculation, library: Library, collector: Collector, for_record: bool = True
 ) -> Solved | None:
+    _check_strangers(library, collector)
     chain = build(calculation, library, collector)
     if chain is None:
         return None
@@ -207,6 +209,24 @@ def check_house_cards(chain: Chain, collector: Collector) -> None:
     for name in materials:
         if chain.library.material(name).house:
             _collected(check_material, chain.library.material(name), collector)
+
+
+def _check_strangers(library: Library, collector: Collector) -> None:
+    """That every file among the book's own cards is one: a card that cannot be read would be missing without a word."""
+    for path in library.strangers():
+        try:
+            root = read_file(path, path.name).root
+        except Faults as faults:
+            collector.take(faults.faults)
+            continue
+        found = root.entries[0][0] if isinstance(root, Mapping) and root.entries else root
+        collector.add(
+            "key-unknown",
+            found.place,
+            "a card begins with what it is",
+            found=shown(found.text) if isinstance(found, Scalar) else "",
+            expected=": … | ".join(CARDS) + ": …",
+        )
 
 
 def _cards_of(chain: Chain) -> tuple[tuple[str, ...], tuple[str, ...]]:

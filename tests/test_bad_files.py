@@ -44,6 +44,7 @@ CARDS = {
     "card-without-source",
     "card-without-successor",
     "check-point-failed",
+    "check-point-loose",
     "check-point-unknown",
     "check-points-missing",
     "choice-without-end",

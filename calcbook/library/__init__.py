@@ -93,13 +93,19 @@ class Library:
         house = self._house_cards(kind)
         return tuple(sorted({*_built_in_names(kind), *house})) if house else _built_in_names(kind)
 
+    def strangers(self) -> tuple[Path, ...]:
+        """The files among the book's own cards that do not begin as a card does."""
+        return tuple(path for path, key in self._first_keys().items() if key not in CARDS)
+
     def _house_cards(self, kind: str) -> dict[str, Path]:
         """The book's own cards of a kind: what a card is, its first key says."""
-        if self.house is None:
-            return {}
+        return {path.stem: path for path, key in self._first_keys().items() if key == kind.removesuffix("s")}
+
+    def _first_keys(self) -> dict[Path, str]:
         if self._house is None:
-            self._house = {path: _first_key(path) for path in sorted(self.house.glob("*.yaml"))}
-        return {path.stem: path for path, key in self._house.items() if key == kind.removesuffix("s")}
+            files = self.house.glob("*.yaml") if self.house is not None else ()
+            self._house = {path: _first_key(path) for path in sorted(files)}
+        return self._house
 
     def _path(self, kind: str, name: str) -> tuple[Path, bool]:
         path = ROOT / kind / f"{name}.yaml"
@@ -123,6 +129,10 @@ class Library:
         )
 
 
+# The first key of a card, which says what it is.
+CARDS = ("method", "situation", "material")
+
+
 @functools.cache
 def _built_in_names(kind: str) -> tuple[str, ...]:
     return tuple(sorted(path.stem for path in (ROOT / kind).glob("*.yaml")))
@@ -139,7 +149,7 @@ def _first_key(path: Path) -> str:
         lines = path.read_text(encoding="utf-8").splitlines()
     except (OSError, UnicodeDecodeError):
         return ""
-    first = next((line for line in lines if line.strip() and not line.lstrip().startswith("#")), "")
+    first = next((line for line in lines if line.strip() and not line.lstrip().startswith(("#", "---"))), "")
     return first.partition(":")[0].strip()
 
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import math
+import re
 from collections.abc import Iterable, Mapping
 from pathlib import Path
 from typing import Any
@@ -39,6 +40,9 @@ from calcbook.library.cards import (
 )
 from calcbook.quantities import QuantityFault, QuantityKind, kind_from_entry, read_any, read_quantity
 
+# A stated share in per cent, and the largest part of a figure by which a check point may be missed.
+SHARE = re.compile(r"(?<![-−0-9.])([0-9]+(?:\.[0-9]+)?) %")
+LOOSEST = 0.5
 _VOCABULARY = Path(__file__).with_name("vocabulary.yaml")
 _kinds: dict[str, QuantityKind] = {}
 
@@ -199,6 +203,14 @@ class _Reader:
             if isinstance(gives_node, MappingNode):
                 gives = {key.text: self.number(value, key.place) for key, value in gives_node.entries}
             within = self.number(fields.node("within"), fields.place)
+            if within > LOOSEST or within < 0.0:
+                self.fault(
+                    fields.place_of("within"),
+                    "check-point-loose",
+                    "a check point that hardly any figure misses checks nothing",
+                    found=f"{within:g}",
+                    expected=f"a part of the figure, from 0 to {LOOSEST:g}",
+                )
             result.append(
                 CheckPoint(given, gives, within, fields.text("source"), fields.text("standing"), item.place)
             )
@@ -518,6 +530,15 @@ class _Reader:
         if node is None:
             return None
         fields = self.record(node, described.ACCURACY)
+        share = SHARE.search(fields.text("within"))
+        if "within" in fields and (share is None or float(share[1]) == 0.0):
+            self.fault(
+                fields.place_of("within"),
+                "number-unreadable",
+                "an accuracy is a part of the value, in per cent",
+                found=shown(fields.text("within")),
+                expected="a figure above zero, such as 20 % or 15 % mean",
+            )
         return Accuracy(
             fields.text("within"), fields.text("coverage"), fields.text("stated by"), fields.text("standing")
         )
@@ -673,7 +694,13 @@ class _Reader:
         """What of a card decides numbers, as canonical text: relations, tables, constants, limits."""
         parts: dict[str, Any] = {name: plain(self.fields.node(name)) for name in names if name in self.fields}
         if "limits" in parts:
-            parts["limits"] = [{key: row[key] for key in ("id", "that", "level")} for row in parts["limits"]]
+            # A limit that lacks one of these has its fault already.
+            parts["limits"] = [
+                {key: row[key] for key in ("id", "that", "level") if key in row}
+                if isinstance(row, dict)
+                else row
+                for row in parts["limits"]
+            ]
         return json.dumps(parts, sort_keys=True, ensure_ascii=False, separators=(",", ":"))
 
 

@@ -123,6 +123,30 @@ def test_a_changed_figure_is_found_by_every_run(book: Path) -> None:
 
 
 @pytest.mark.parametrize(
+    ("text", "code", "line"),
+    [
+        (b"a: [\n", "yaml-syntax", 1),
+        (b"", "file-empty", 1),
+        (b"# nothing yet\n", "file-empty", 1),
+        (b"\x89PNG\r\n\x1a\n\x00", "file-not-utf8", 1),
+        (b"notes: of the plant\n", "key-unknown", 1),
+        (b"- method\n", "key-unknown", 1),
+    ],
+)
+def test_a_file_among_the_cards_that_is_none_is_told(book: Path, text: bytes, code: str, line: int) -> None:
+    """Also where no calculation uses it: a card that cannot be read would be missing without a word."""
+    (book / "cards" / "another.yaml").write_bytes(text)
+    (fault,) = faults(book).faults
+    assert (fault.code, fault.place.file, fault.place.line) == (code, "another.yaml", line)
+
+
+def test_a_card_may_begin_with_a_mark_of_its_document(book: Path) -> None:
+    path = book / "cards" / f"{CARD}.yaml"
+    path.write_text(f"---\n{path.read_text(encoding='utf-8')}", encoding="utf-8")
+    assert solve_file(book / "he-951.yaml").base.results["U_service"].value > 900
+
+
+@pytest.mark.parametrize(
     ("old", "new", "code"),
     [
         ("0.222*Re**0.58", "0.222*Re)**0.58", "relation-syntax"),
