@@ -115,6 +115,7 @@ CODES: dict[str, str] = {
     "fins-not-here": "fins that do not fit the surface, or more films with fins than one",
     "term-order": "terms stand in an order that cannot be",
     "term-twice": "two terms of one name",
+    "terms-too-many": "a list of more terms than are read",
     "term-unknown": "a term that is not in the list",
     "stream-unknown": "a stream that is not in the file",
     "situation-unknown": "a situation that the library does not have",

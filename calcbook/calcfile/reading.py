@@ -56,6 +56,8 @@ from calcbook.quantities import (
     unit_factor,
 )
 
+# A wall, its deposits and films are some ten terms; the sum over them is one relation.
+MOST_TERMS = 60
 NUMBER = re.compile(r"[A-Za-z0-9][A-Za-z0-9_.-]{0,39}")
 SYMBOL = re.compile(r"[A-Za-z][A-Za-z0-9_]{0,39}")
 # What other ids of the chain start with: a term of that name would be taken for them.
@@ -934,6 +936,16 @@ class Reader:
                 "a list of terms is empty",
                 expected="terms in order, from the inside to the outside",
             )
+        if isinstance(node, Sequence) and len(node.items) > MOST_TERMS:
+            self.terms_hold = False
+            self.collector.add(
+                "terms-too-many",
+                node.items[MOST_TERMS].place,
+                "a list has more terms than a calculation is read with",
+                found=f"{len(node.items)} terms",
+                expected=f"at most {MOST_TERMS}; layers of one kind can be stated as one",
+            )
+            return ()
         for index, item in enumerate(node.items if isinstance(node, Sequence) else ()):
             term = self.term(item, index)
             result.append(term)
