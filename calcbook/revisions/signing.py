@@ -296,6 +296,17 @@ def _take(work: Work, role: str, signer: str, date: datetime.date) -> Step:
     calculation = work.solved.chain.calculation
     path = signoffs_path(work.path)
     kept = read_signoffs(path)
+    earlier = next(
+        (one for one in kept.signoffs if (one.role, one.revision) == (role, calculation.revision)), None
+    )
+    if earlier is not None and date.isoformat() < earlier.date:
+        raise _fault(
+            "date-order",
+            work.place,
+            f"{role} on {date.isoformat()} lies before the sign-off that it would replace",
+            date.isoformat(),
+            f"{earlier.date}, when {earlier.name} signed, or later",
+        )
     entry = SignOff(
         role,
         signer,
@@ -320,7 +331,8 @@ def _take(work: Work, role: str, signer: str, date: datetime.date) -> Step:
     write_record(work)
     if role not in WITHOUT_FORM:
         forms.form_path(work.path, role).unlink(missing_ok=True)
-    return Step(SIGNED, path)
+    replaced = f", in place of {earlier.name} on {earlier.date}" if earlier is not None else ""
+    return Step(f"{SIGNED}{replaced}", path)
 
 
 def _with_form(entry: SignOff, work: Work, kept: SignOffFile) -> SignOff:

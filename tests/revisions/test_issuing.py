@@ -209,7 +209,9 @@ def test_house_cards_and_table_files_go_into_the_copy_which_solves_by_itself(tmp
     (path.parent / "cards" / "house-steel.yaml").write_text(
         card.replace("material: stainless-316-kaschnitz-2017", "material: house-steel"), encoding="utf-8"
     )
-    (path.parent / "cards" / "not-used.yaml").write_text("nothing: here\n", encoding="utf-8")
+    (path.parent / "cards" / "not-used.yaml").write_text(
+        card.replace("material: stainless-316-kaschnitz-2017", "material: not-used"), encoding="utf-8"
+    )
     (path.parent / "oil.csv").write_text(
         "T,density,viscosity,conductivity,heat capacity\ndegC,kg/m^3,mPa s,W/(m K),kJ/(kg K)\n"
         "20,1000,1.0,0.60,4.18\n50,990,0.55,0.64,4.18\n100,960,0.28,0.68,4.2\n",

@@ -97,6 +97,14 @@ def test_a_checker_gets_a_form_and_his_filled_form_becomes_the_sign_off(path: Pa
     ]
 
 
+def test_a_sign_off_that_replaces_another_says_so_and_is_not_older(path: Path) -> None:
+    sign_prepared(path)
+    again = sign(work_of(path), "prepared", "kl", day("2026-09-05"))
+    assert again.done == "signed, in place of K. L. on 2026-09-02"
+    assert codes(lambda: sign(work_of(path), "prepared", "kl", day("2026-09-04"))) == ["date-order"]
+    assert [one.date for one in read_signoffs(signoffs_path(path)).signoffs] == ["2026-09-05"]
+
+
 def test_signing_leaves_the_signed_file_as_it_was_and_writes_the_record(path: Path) -> None:
     before = path.read_bytes()
     sign_prepared(path)
