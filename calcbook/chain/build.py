@@ -370,7 +370,25 @@ class _Builder:
             if symbol not in self.scope.used_in:
                 self.scope.used_in[symbol] = []
 
+    def _history(self) -> None:
+        """That the revision history, where there is one, has the revision of the title block with its date."""
+        calculation = self.calculation
+        name = f"revision {calculation.revision} / history"
+        own = [one for one in calculation.revisions if one.revision == calculation.revision]
+        if calculation.revisions and not own:
+            self.scope.open(
+                name, "revision", f"Revision {calculation.revision} does not stand in the revision history."
+            )
+        elif own and own[-1].date != calculation.date:
+            self.scope.open(
+                name,
+                "revision",
+                f"The title block dates revision {calculation.revision} {calculation.date}, the revision history"
+                f" {own[-1].date}.",
+            )
+
     def _assumptions_of_engineer(self) -> None:
+        self._history()
         for revision in self.calculation.revisions:
             if revision.reason.casefold().strip(" .…") in ("to be written", "tbd", ""):
                 self.scope.open(

@@ -112,7 +112,26 @@ def test_an_issue_is_not_older_than_its_sign_offs(tmp_path: Path, preliminary: b
 def test_a_revision_stands_in_the_revision_history(tmp_path: Path) -> None:
     path = make_book(tmp_path, CALCULATION.replace("{revision: A, date", "{revision: Z, date"))
     sign_all(path)
-    assert codes(lambda: issue(work_of(path), day("2026-09-05"))) == ["revision-not-listed"]
+    refused = codes(lambda: issue(work_of(path), day("2026-09-05")))
+    assert set(refused) == {"issue-open-item", "revision-not-listed"}
+    assert codes(lambda: issue(work_of(path), day("2026-09-05"), preliminary=True)) == ["revision-not-listed"]
+
+
+def test_a_title_block_that_differs_from_its_history_is_an_open_item(tmp_path: Path) -> None:
+    """The record would be called confirmed with a date of its own otherwise."""
+    other = CALCULATION.replace("{revision: A, date: 2026-09-02", "{revision: A, date: 2026-09-01")
+    assert other != CALCULATION
+    for text, words in (
+        (other, "dates revision A 2026-09-02, the revision history 2026-09-01."),
+        (
+            CALCULATION.replace("{revision: A, date", "{revision: Z, date"),
+            "does not stand in the revision history.",
+        ),
+    ):
+        items = {
+            item.id: item.text for item in work_of(make_book(tmp_path / words[:4], text)).solved.open_items
+        }
+        assert items["revision A / history"].endswith(words)
 
 
 def test_a_revision_is_never_issued_twice(tmp_path: Path) -> None:

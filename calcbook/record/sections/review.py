@@ -24,12 +24,12 @@ Answer = Callable[[Page], str]
 
 def _identity(page: Page) -> str:
     calculation = page.calculation
-    listed = any(item.revision == calculation.revision for item in calculation.revisions)
-    words = "stands in" if listed else "does not stand in"
-    return (
-        f"{calculation.number}, revision {calculation.revision}, {calculation.date}; the revision {words} the"
-        " revision history."
-    )
+    own = [item for item in calculation.revisions if item.revision == calculation.revision]
+    words = "does not stand in the revision history"
+    if own:
+        dated = "with this date" if own[-1].date == calculation.date else f"with the date {own[-1].date}"
+        words = f"stands in the revision history {dated}"
+    return f"{calculation.number}, revision {calculation.revision}, {calculation.date}; the revision {words}."
 
 
 def _sources(page: Page) -> str:
