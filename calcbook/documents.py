@@ -225,7 +225,11 @@ def _text_of(path: Path, called: str) -> str:
         with path.open("rb") as stream:
             data = stream.read(MAXIMUM_BYTES + 1)
     except FileNotFoundError:
-        beside = [item.name for item in path.parent.glob("*.yaml")] if path.parent.is_dir() else []
+        beside = (
+            [item.name for item in path.parent.glob("*.yaml") if item.exists()]
+            if path.parent.is_dir()
+            else []
+        )
         near = nearest_names(path.name, sorted(beside))
         raise _single(
             "file-not-found", place, "there is no such file", expected="an existing YAML file", nearest=near

@@ -368,6 +368,8 @@ _MEANT = {
     "at": ("kgf/cm^2",), "ata": ("kgf/cm^2(a)",), "ati": ("kgf/cm^2(g)",), "mH2O": ("kPa",),
     "BTUH": ("Btu/h",), "Btuh": ("Btu/h",), "hp": ("kW", "W"), "HP": ("kW", "W"),
     "kPag": ("kPa(g)",), "kPaa": ("kPa(a)",), "barA": ("bara",), "barG": ("barg",),
+    "atg": ("kgf/cm^2(g)",), "atü": ("kgf/cm^2(g)",), "PSIG": ("psig",), "PSIA": ("psia",),
+    "mWC": ("kPa",), "mWS": ("kPa",), "m2K": ("m^2 K",), "ft2F": ("ft^2 degF",),
     "ppm": ("mg/kg",), "Poise": ("P",), "poise": ("P",), "M": ("m",), "S": ("s",),
 }  # fmt: skip
 """Frequent wrong names that similarity of spelling does not find."""
@@ -961,8 +963,21 @@ def _check_dimension(reading: _Reading, kind: QuantityKind) -> None:
     has = "no unit" if kind.dimension == DIMENSIONLESS and not is_angle else f"a unit such as {examples}"
     name = shown(reading.unit_text)
     raise reading.fault(
-        "unit-dimension", f"{name} is not a unit of {kind.name}", "unit", expected=f"{kind.name} has {has}"
+        "unit-dimension",
+        f"{name} is not a unit of {kind.name}",
+        "unit",
+        expected=f"{kind.name} has {has}",
+        nearest=_pressure_apart(reading.unit_text) if kind.dimension == _PRESSURE else (),
     )
+
+
+def _pressure_apart(unit_text: str) -> tuple[str, ...]:
+    """What ``bar g`` is meant to be: its last letter is a gram or a year otherwise."""
+    found = re.fullmatch(r"(\S+) ([agAG])", unit_text.strip())
+    if found is None or not _has_dimension(found[1], _PRESSURE):
+        return ()
+    letter = found[2].lower()
+    return (f"{found[1]}{letter}" if found[1] in ("bar", "psi") else f"{found[1]}({letter})",)
 
 
 def _examples(kind: QuantityKind) -> str:

@@ -802,3 +802,17 @@ def test_a_number_of_things_is_at_least_one_and_no_part_of_something() -> None:
     for text, code in (("6200 %", "unit-dimension"), ("0.5", "quantity-beyond-definition")):
         assert fault_of(text, "tubes in parallel").code == code
     assert fault_of("62.5", "tubes").code == "quantity-beyond-definition"
+
+
+@pytest.mark.parametrize(
+    ("text", "nearest"),
+    [
+        ("2 bar g", "barg"),
+        ("200 kPa g", "kPa(g)"),
+        ("30 PSIG", "psig"),
+        ("4 atg", "kgf/cm^2(g)"),
+        ("10 W/(m2K)", "m^2 K"),
+    ],
+)
+def test_the_nearest_unit_is_the_one_that_is_meant(text: str, nearest: str) -> None:
+    assert nearest in fault_of(text, "pressure").nearest[0]

@@ -58,7 +58,7 @@ def _of_folder(folder: Path) -> list[Path]:
     return [
         path
         for path in folder.glob("*.yaml")
-        if path.name != BOOK_FILE and not path.name.endswith(BESIDE) and path.is_file()
+        if path.name != BOOK_FILE and not path.name.endswith(BESIDE) and not path.is_dir()
     ]
 
 
