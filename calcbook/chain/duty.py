@@ -6,6 +6,7 @@ what needs U (areas, margins, the heat that the installed area reaches) after th
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 
@@ -205,6 +206,24 @@ class DutyLayout:
         has = "an even number of tube passes" if is_multiple else "one pass of each stream"
         because = f"the mean temperature difference of this arrangement is that of {has}"
         self._check(PASSES, that, "caution", because, {"N_p": passes})
+        if is_multiple:
+            self._say_odd(passes)
+
+    def _say_odd(self, passes: str) -> None:
+        """That an odd number of tube passes is taken as an even one."""
+        symbol = passes.removeprefix("given/")
+        given = self.scope.calculation.givens.get(symbol)
+        stated = self.scope.inputs.get(passes)
+        value = stated.value if stated is not None else math.nan
+        if given is not None and given.value.quantity is not None:
+            value = given.value.quantity.value
+        if value > 1.0 and value % 2.0 == 1.0:
+            self.scope.assume(
+                "duty/odd passes",
+                f"{value:g} tube passes are taken as an even number of them.",
+                "the mean temperature difference of this arrangement is that of an even number of tube passes",
+                "duty",
+            )
 
     def _flow_check(self, name: str) -> None:
         self._check(f"ends / {name} flow", SOME_FLOW, "stop", NO_FLOW, {"m": self.states[name].mass_flow})

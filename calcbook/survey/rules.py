@@ -7,13 +7,14 @@ of the file. A negative fouling resistance breaks no rule.
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
 from calcbook.calcfile.survey import Survey
 from calcbook.chain.survey_outcome import RuleCount
 from calcbook.chain.types import Input
+from calcbook.faults import shown
 from calcbook.quantities import unit_factor
 from calcbook.survey.rows import Rows
 
@@ -87,6 +88,8 @@ def sift(rows: Rows, survey: Survey, ends: Ends, givens: Mapping[str, Input]) ->
     for figures in rows.columns.values():
         readable &= np.isfinite(figures)
     sieve.reject(UNREADABLE, "a cell that is empty, no number or no time", "every cell a number", ~readable)
+    if sieve.rules[-1].first:
+        sieve.rules[-1] = replace(sieve.rules[-1], first=_first_unreadable(rows, survey))
     sieve.reject(
         "duplicate time stamp",
         "a time that a row above has",
@@ -138,6 +141,18 @@ def _impossible(rows: Rows, givens: Mapping[str, Input]) -> Array:
     for symbol, figures in rows.columns.items():
         broken |= ~np.asarray(givens[symbol].kind.allowed(figures))
     return broken
+
+
+def _first_unreadable(rows: Rows, survey: Survey) -> str:
+    """The first cell of the file that is no number or no time, as it stands there."""
+    heads = {
+        survey.time_head: rows.times,
+        **{survey.columns[name].head: row for name, row in rows.columns.items()},
+    }
+    wrong = {head: rows.numbers[~np.isfinite(figures)] for head, figures in heads.items()}
+    row, head = min((int(numbers.min()), head) for head, numbers in wrong.items() if len(numbers))
+    cell = survey.history.columns[head].split("\n")[row - 1]
+    return f"row {row}, {head}: {shown(cell) if cell else 'empty'}"
 
 
 def _repeated(sieve: Sieve) -> Array:

@@ -123,7 +123,7 @@ class _Survey:
 
     def too_few(self, rows: Rows, kept: _Kept, sieve: Sieve, left: int) -> None:
         assert self.model is not None
-        counts = [f"{rule.count} by {rule.id}" for rule in sieve.rules if rule.count]
+        counts = [f"{rule.count} by {rule.id} (first: {rule.first})" for rule in sieve.rules if rule.count]
         if len(kept.times) > left:
             counts.append(
                 f"{len(kept.times) - left} before the first cleaning or without rows to anchor zero on"

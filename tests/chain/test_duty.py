@@ -397,3 +397,16 @@ def test_passes_that_the_arrangement_does_not_have_are_a_caution(
         check for check in solve_file(path).base.checks if check.id == "duty / arrangement / tube passes"
     ]
     assert {(check.state, check.level) for check in checks} == {(state, "caution")}
+
+
+def test_an_odd_number_of_tube_passes_is_said_to_be_taken_as_an_even_one(tmp_path: Path) -> None:
+    text = (Path(__file__).resolve().parents[2] / "calcs/hr-821.yaml").read_text(encoding="utf-8")
+    old = "passes: {value: 4,"
+    assert text.count(old) == 1
+    said = {}
+    for number in (3, 4):
+        path = tmp_path / f"hr-{number}.yaml"
+        path.write_text(text.replace(old, f"passes: {{value: {number},"), encoding="utf-8")
+        solved = solve_file(path, for_record=False)
+        said[number] = [item.text for item in solved.base.assumptions if item.id == "duty/odd passes"]
+    assert said == {3: ["3 tube passes are taken as an even number of them."], 4: []}

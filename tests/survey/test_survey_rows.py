@@ -97,7 +97,7 @@ def test_the_rule_names_the_first_row_it_rejects(outcome_of: Outcomes, whole: li
     rows[40][3] = "n/a"
     rows[20][3] = ""
     outcome = outcome_of(rows)
-    assert next(rule.first for rule in outcome.rules if rule.id == "unreadable") == "row 21"
+    assert next(rule.first for rule in outcome.rules if rule.id == "unreadable") == "row 21, TI-1113: empty"
 
 
 def test_a_history_that_mostly_cannot_be_read_is_an_open_item(
@@ -281,3 +281,21 @@ def test_a_stamp_is_a_date_without_a_zone_or_nothing(cell: str, seconds: float |
     for text in (cell, f"{cell}\nBad"):
         found = read_moments(text)[0]
         assert np.isnan(found) if seconds is None else found == seconds
+
+
+def test_an_unreadable_history_names_its_first_cell(tmp_path: Path, whole: list[list[str]]) -> None:
+    """A zone behind every time: nothing is left, and the fault says of which cell."""
+    rows = [[f"{row[0]}Z", *row[1:]] for row in whole]
+    with pytest.raises(Faults) as caught:
+        solved_survey(tmp_path, rows)
+    (fault,) = caught.value.faults
+    assert fault.code == "survey-rows-missing"
+    assert "unreadable (first: row 1, time: 2025-02-03 06:00Z)" in fault.found
+
+
+def test_cleanings_that_are_not_those_of_the_data_are_a_caution(
+    tmp_path: Path, whole: list[list[str]]
+) -> None:
+    """The first cleaning typed ten years too early: its rows have nothing to anchor zero on."""
+    solved = solved_survey(tmp_path, whole, SURVEY.replace("at: 2025-02-03", "at: 2015-02-03"))
+    assert "of the kept rows are not fitted" in record_text(solved).partition("## 14.")[2]

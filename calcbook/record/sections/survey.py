@@ -95,7 +95,17 @@ def _rows(outcome: SurveyOutcome) -> list[Block]:
 def survey_cautions(outcome: SurveyOutcome) -> list[str]:
     """What a reader of the proposal must not overlook."""
     beyond = [_reach(outcome)] if outcome.after > outcome.period else []
-    return [*_many_rejected(outcome), *_offsets_apart(outcome), *beyond]
+    return [*_many_rejected(outcome), *_many_not_fitted(outcome), *_offsets_apart(outcome), *beyond]
+
+
+def _many_not_fitted(outcome: SurveyOutcome) -> list[str]:
+    lost = outcome.before_cleaning + outcome.not_anchored
+    if not lost > MANY_REJECTED * outcome.kept:
+        return []
+    return [
+        f"{percent(lost / outcome.kept)} of the kept rows are not fitted: they lie before the first cleaning, or after one"
+        " without rows to anchor zero. The dates of the cleanings may not be those of the data."
+    ]
 
 
 def _many_rejected(outcome: SurveyOutcome) -> list[str]:
