@@ -10,7 +10,7 @@ from typing import NamedTuple
 from calcbook.calcfile.links import Link
 from calcbook.calcfile.survey import Survey
 from calcbook.calcfile.uncertainty import UncertaintyText
-from calcbook.faults import Place
+from calcbook.faults import Collector, Place
 from calcbook.formulas import Relation
 from calcbook.quantities import Quantity
 
@@ -38,6 +38,21 @@ class Value:
     @property
     def is_literal(self) -> bool:
         return self.quantity is not None
+
+    def is_share(self, name: str, collector: Collector) -> bool:
+        """Whether a figure for a share is no larger than shares are; else the fault, number-out-of-proportion."""
+        quantity = self.quantity
+        if quantity is None or quantity.unit_text or quantity.value <= LARGEST_SHARE:
+            return True
+        collector.add(
+            "number-out-of-proportion",
+            self.place,
+            f"`{name}` is a share: {self.text} would be {100.0 * quantity.value:g} %",
+            found=self.text,
+            expected="a share of one, or per cent",
+            nearest=(f"{self.text} %",),
+        )
+        return False
 
 
 class Tolerance(NamedTuple):

@@ -5,7 +5,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING
 
 from calcbook.calcfile import descriptions as described
-from calcbook.calcfile.calculation import LARGEST_SHARE, FoulingSpecified, Term, Value
+from calcbook.calcfile.calculation import FoulingSpecified, Term, Value
 from calcbook.documents import Mapping as MappingNode
 from calcbook.documents import Node, read_mapping
 from calcbook.faults import nearest_names, shown
@@ -36,16 +36,7 @@ def read_specified(reader: Reader, terms: tuple[Term, ...]) -> FoulingSpecified 
         return None
     value = reader.value(fields.node(stated[0]))
     assert value is not None
-    quantity = value.quantity
-    if quantity is not None and not quantity.unit_text and quantity.value > LARGEST_SHARE:
-        reader.collector.add(
-            "number-out-of-proportion",
-            value.place,
-            f"`{stated[0]}` is a share: {value.text} would be {100.0 * quantity.value:g} %",
-            found=value.text,
-            expected="a share of one, or per cent",
-            nearest=(f"{value.text} %",),
-        )
+    value.is_share(stated[0], reader.collector)
     split = _split(reader, fields.node("split"))
     open_terms = [term.name for term in terms if is_open(term)]
     _check_split(reader, node, split, open_terms)

@@ -118,24 +118,18 @@ def _end(
     if node is None or found is None:
         return None
     place = node.part(1, len(node.text) + 1)
-    if given is None or given.value.quantity is None:
+    base = given.value.quantity if given is not None else None
+    if given is None or base is None:
         return found, place
-    if found.dimension != given.value.quantity.dimension:
-        collector.add(
-            "unit-dimension",
-            place,
-            f"`{given.symbol}` is another quantity",
-            found=shown(node.text),
-            expected=f"a figure in {unit_display(si_unit(given.value.quantity.dimension)) or '1'}",
-        )
-        return None
-    if not found.on_base_of(given.value.quantity):
-        collector.add(
-            "unit-dimension",
-            place,
-            f"`{given.symbol}` is swept on another pressure base",
-            found=shown(node.text),
-            expected=f"gauge or absolute as in {given.value.text}",
-        )
-        return None
-    return found, place
+    is_one = found.dimension == base.dimension
+    if is_one and found.on_base_of(base):
+        return found, place
+    unit = unit_display(si_unit(base.dimension)) or "1"
+    collector.add(
+        "unit-dimension",
+        place,
+        f"`{given.symbol}` is {'swept on another pressure base' if is_one else 'another quantity'}",
+        found=shown(node.text),
+        expected=f"gauge or absolute as in {given.value.text}" if is_one else f"a figure in {unit}",
+    )
+    return None

@@ -9,7 +9,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from calcbook.calcfile.calculation import LARGEST_SHARE, Criterion
+from calcbook.calcfile.calculation import Criterion
 from calcbook.chain.allowance import LARGEST_ALLOWANCE, largest_allowances
 from calcbook.chain.alternatives import alternatives, needs_temperatures
 from calcbook.chain.checks import apply_acceptances, evaluate_check, state_of_check
@@ -867,15 +867,7 @@ class _Analysis:
                 return None
             return solution.figure(name)
         assert value.quantity is not None, "a limit is a symbol or a quantity"
-        if kind.name == "ratio" and not value.quantity.unit_text and value.quantity.value > LARGEST_SHARE:
-            self.collector.add(
-                "number-out-of-proportion",
-                value.place,
-                f"`{criterion.result}` is a share: {value.text} would be {100.0 * value.quantity.value:g} %",
-                found=value.text,
-                expected="a share of one, or per cent",
-                nearest=(f"{value.text} %",),
-            )
+        if kind.name == "ratio" and not value.is_share(criterion.result, self.collector):
             return None
         limit = self._read_limit(value.quantity, kind, value.place)
         return np.asarray(limit) if limit is not None else None

@@ -6,7 +6,9 @@ from pathlib import Path
 from textwrap import dedent, indent
 
 from calcbook.calcfile import read_calculation, read_settings
+from calcbook.chain.analysis import analyse
 from calcbook.chain.build import build
+from calcbook.chain.outcome import Solved
 from calcbook.chain.types import Chain
 from calcbook.faults import Collector
 from calcbook.library import Library
@@ -40,6 +42,15 @@ def givens(**figures: str) -> str:
         for symbol, text in figures.items()
     ]
     return "givens:\n" + "\n".join(rows) + "\n"
+
+
+def analysed(folder: Path, body: str) -> Solved:
+    """A calculation with everything that its record holds of the chain. Raises ``Faults``."""
+    collector = Collector()
+    found = analyse(chain_of(folder, body), collector)
+    collector.stop_if_any()
+    assert found is not None
+    return found
 
 
 COOLER_GIVENS = {

@@ -7,26 +7,17 @@ from pathlib import Path
 
 import numpy as np
 import pytest
-from small_calculations import chain_of, givens
+from small_calculations import analysed, chain_of, givens
 
-from calcbook.chain.analysis import analyse
 from calcbook.chain.outcome import Solved
 from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.solve import solve
-from calcbook.faults import Collector, Faults
+from calcbook.faults import Faults
 from calcbook.library import load_method, load_situation
 from calcbook.properties import pure
 
 # A side so good that its surface stands at the stated temperature.
 IDEAL = "1e9 W/(m^2 K)"
-
-
-def solved(folder: Path, body: str) -> Solved:
-    collector = Collector()
-    answer = analyse(chain_of(folder, body), collector)
-    collector.stop_if_any()
-    assert answer is not None
-    return answer
 
 
 def plate(
@@ -122,7 +113,7 @@ def test_a_plate_of_two_metres(tmp_path: Path) -> None:
     """Cengel and Ghajar, example 10-4: 5850 W/(m2 K), Re = 1287, wavy film. 0.3 %: its properties are
     rounded, it neglects the density of the vapour, and the backend's line boils at 99.97 degC.
     """
-    answer = solved(tmp_path, plate("2 m"))
+    answer = analysed(tmp_path, plate("2 m"))
     assert coefficient(answer) == pytest.approx(5850.0, rel=3e-3)
     assert answer.cases[0].solutions["service"].number("film/Re_lf") == pytest.approx(1287.0, rel=4e-3)
     assert answer.cases[0].terms["service"][-1].methods == "kutateladze-1963-wavy"
@@ -130,7 +121,7 @@ def test_a_plate_of_two_metres(tmp_path: Path) -> None:
 
 def test_a_horizontal_tube(tmp_path: Path) -> None:
     """Cengel and Ghajar, example 10-6: 30 mm, 40 and 30 degC, 9295 W/(m2 K) with 0.729 (0.728 here)."""
-    answer = solved(
+    answer = analysed(
         tmp_path, outside_tube("water", "gas", "7384.9 Pa", "condensing-horizontal-tube", "30 degC")
     )
     assert coefficient(answer) == pytest.approx(9295.0 * 0.728 / 0.729, rel=2e-3)
@@ -148,7 +139,7 @@ def test_boiling_water_on_polished_copper(tmp_path: Path) -> None:
         "108 degC",
         ", method: rohsenow-1952, with: {surface: water_polished_copper}",
     )
-    answer = solved(tmp_path, body)
+    answer = analysed(tmp_path, body)
     flux = coefficient(answer) * (
         108.0 + 273.15 - answer.cases[0].solutions["service"].number("stream vapour/T_sat")
     )
@@ -167,7 +158,7 @@ def test_boiling_water_on_polished_copper(tmp_path: Path) -> None:
     ],
 )
 def test_the_film_reynolds_number_chooses(tmp_path: Path, height: str, method: str) -> None:
-    answer = solved(tmp_path, plate(height))
+    answer = analysed(tmp_path, plate(height))
     assert answer.cases[0].terms["service"][-1].methods == method
     sentence = next(
         item.decided_by for item in answer.cases[0].assumptions if item.id == "film/method/service"
@@ -177,7 +168,7 @@ def test_the_film_reynolds_number_chooses(tmp_path: Path, height: str, method: s
 
 def test_the_film_reynolds_number_is_the_one_of_the_condensate(tmp_path: Path) -> None:
     """4 h L dT/(mu h_c), from the figures of the solution; the card takes it from the heat flux."""
-    answer = solved(tmp_path, plate("1.5 m"))
+    answer = analysed(tmp_path, plate("1.5 m"))
     numbers = answer.cases[0].solutions["service"]
     drop = numbers.number("stream steam/T_sat") - numbers.number("film/T_s")
     latent = (
@@ -192,17 +183,17 @@ def test_the_film_reynolds_number_is_the_one_of_the_condensate(tmp_path: Path) -
 
 def test_two_heat_flows_at_the_joint_are_named(tmp_path: Path) -> None:
     """Between the wavy and the turbulent film the law steps up by 3 %: near it the circuit closes twice."""
-    twice = solved(tmp_path, plate("3 m"))
+    twice = analysed(tmp_path, plate("3 m"))
     text = items(twice)["circuit / heat flows / service"]
     assert "more than one heat flow" in text
-    assert not any("heat flows" in name for name in items(solved(tmp_path, plate("2 m"))))
+    assert not any("heat flows" in name for name in items(analysed(tmp_path, plate("2 m"))))
 
 
 # --- checks -----------------------------------------------------------------------------------------
 
 
 def test_a_film_that_is_meant_to_change_phase_is_not_cried_at(tmp_path: Path) -> None:
-    states = checks(solved(tmp_path, plate("2 m")))
+    states = checks(analysed(tmp_path, plate("2 m")))
     assert "film / wall phase / freezes" in states
     assert not any(name.endswith(("condenses", "boils")) for name in states)
 
@@ -226,7 +217,7 @@ report: {{U on: outside}}
 
 def test_the_wall_of_a_stated_film_is_held_against_boiling_where_its_state_is_known(tmp_path: Path) -> None:
     """The surface stands near 127 degC; water boils at 99.97 degC at 1 atm (steam tables by IAPWS-95)."""
-    known = solved(tmp_path, stated_film("fluid: water, temperature: T, pressure: p"))
+    known = analysed(tmp_path, stated_film("fluid: water, temperature: T, pressure: p"))
     of_service = {check.id: check for check in known.cases[0].checks if check.condition == "service"}
     limit = of_service["film / wall phase / boils"]
     assert (limit.state, limit.level) == ("outside", "range")
@@ -235,18 +226,18 @@ def test_the_wall_of_a_stated_film_is_held_against_boiling_where_its_state_is_kn
         130.0 + 273.15 - 70.0 * (2000.0 / 50e3) / (1.0 + 2000.0 / 50e3), rel=1e-6
     )
     assert "film / wall phase / freezes" in checks(known)
-    unknown = solved(tmp_path, stated_film("fluid: water, temperature: T"))
+    unknown = analysed(tmp_path, stated_film("fluid: water, temperature: T"))
     assert not any("wall phase" in name for name in checks(unknown))
 
 
 def test_a_stated_coefficient_may_be_that_of_condensing(tmp_path: Path) -> None:
     vapour = stated_film("fluid: water, phase: gas, temperature: T, pressure: p", "70 degC", "120 degC")
-    states = checks(solved(tmp_path, vapour))
+    states = checks(analysed(tmp_path, vapour))
     assert not any(name.endswith("condenses") for name in states)
 
 
 def test_a_pure_vapour_at_rest_is_assumed_and_said(tmp_path: Path) -> None:
-    answer = solved(tmp_path, plate("2 m"))
+    answer = analysed(tmp_path, plate("2 m"))
     said = {item.id: item.text for item in answer.cases[0].assumptions}
     assert said["film/pure"] == "The vapour of steam is pure."
     assert said["film/at rest"] == "The vapour of steam is at rest."
@@ -256,7 +247,7 @@ def test_a_pure_vapour_at_rest_is_assumed_and_said(tmp_path: Path) -> None:
 def test_gas_in_the_vapour_is_an_open_item_and_speed_a_caution(tmp_path: Path) -> None:
     gas = ", non-condensable: {mole fraction: {value: 2 %, source: test}}"
     speed = ", vapour velocity: {value: 12 m/s, source: test}"
-    answer = solved(tmp_path, plate("2 m", term=speed, stream=gas))
+    answer = analysed(tmp_path, plate("2 m", term=speed, stream=gas))
     states = checks(answer)
     assert (
         states["film / vapour / non-condensable gas"] == states["film / vapour / vapour at rest"] == "outside"
@@ -269,7 +260,7 @@ def test_gas_in_the_vapour_is_an_open_item_and_speed_a_caution(tmp_path: Path) -
 def test_beyond_the_critical_heat_flux_there_is_an_open_item(tmp_path: Path) -> None:
     """Water at one atmosphere: the critical heat flux of a tube is 1.0 MW/m2, met near 20 K by this law."""
     calm, hot = (
-        solved(tmp_path, outside_tube("water", "liquid", "101325 Pa", "pool-boiling-tube", surface))
+        analysed(tmp_path, outside_tube("water", "liquid", "101325 Pa", "pool-boiling-tube", surface))
         for surface in ("110 degC", "135 degC")
     )
     name = "film / cooper-1984 / critical heat flux"
@@ -287,11 +278,11 @@ def test_a_subcooled_stream_is_refused(tmp_path: Path) -> None:
         state="temperature: {value: 120 degC, source: test}, pressure: p",
     )
     with pytest.raises(Faults, match="stream-not-saturated"):
-        solved(tmp_path, body)
+        analysed(tmp_path, body)
 
 
 def test_a_temperature_without_a_pressure_is_saturated(tmp_path: Path) -> None:
-    stated = solved(
+    stated = analysed(
         tmp_path,
         outside_tube(
             "water",
@@ -302,7 +293,7 @@ def test_a_temperature_without_a_pressure_is_saturated(tmp_path: Path) -> None:
             state="temperature: {value: 99.97429584766636 degC, source: test}",
         ),
     )
-    found = solved(
+    found = analysed(
         tmp_path, outside_tube("water", "gas", "101325 Pa", "condensing-horizontal-tube", "80 degC")
     )
     # The saturation temperature of 101 325 Pa is written to 17 digits; what is left is rounding.
@@ -311,7 +302,7 @@ def test_a_temperature_without_a_pressure_is_saturated(tmp_path: Path) -> None:
 
 def test_the_colder_side_must_condense(tmp_path: Path) -> None:
     with pytest.raises(Faults, match="phase-change-direction"):
-        solved(tmp_path, plate("1 m", surface="120 degC"))
+        analysed(tmp_path, plate("1 m", surface="120 degC"))
 
 
 # --- every situation, several fluids ----------------------------------------------------------------
@@ -343,7 +334,7 @@ def test_every_situation_closes(tmp_path: Path, situation, fluid) -> None:
             body = body.replace(
                 "outside diameter: d_o}", "outside diameter: d_o, length: {value: 2 m, source: test}}"
             )
-    answer = solved(tmp_path, body)
+    answer = analysed(tmp_path, body)
     case = answer.cases[0]
     # the ideal side drops less than a rounding of its temperature: it is no measure of closure
     rows = [row for row in case.closure if row.what in ("heat flow through film", "summed temperature drops")]
@@ -399,7 +390,9 @@ def test_condensing_films_thin_with_the_difference(tmp_path: Path) -> None:
     """Nusselt: h goes with the fourth root of one over the difference, but for properties and subcooling."""
     small, large = (
         coefficient(
-            solved(tmp_path, outside_tube("water", "gas", "101325 Pa", "condensing-horizontal-tube", surface))
+            analysed(
+                tmp_path, outside_tube("water", "gas", "101325 Pa", "condensing-horizontal-tube", surface)
+            )
         )
         for surface in ("98 degC", "84 degC")
     )
@@ -433,5 +426,5 @@ def test_a_blend_that_boils_over_a_range_is_not_taken_as_pure(tmp_path: Path) ->
         "temperature: saturation, pressure: p", "temperature: {value: 15 degC, source: test}"
     )
     for text in (body, by_temperature):
-        item = items(solved(tmp_path, text))["stream vapour/boils over a range"]
+        item = items(analysed(tmp_path, text))["stream vapour/boils over a range"]
         assert 4.0 < float(item.split("range of ")[1].split(" K")[0]) < 6.0

@@ -12,26 +12,18 @@ from small_calculations import (
     OIL,
     SPHERE,
     STATED,
+    analysed,
     chain_of,
     givens,
     insulated_pipe,
 )
 
-from calcbook.chain.analysis import analyse
 from calcbook.chain.outcome import CheckResult, Solved
 from calcbook.chain.plausible import FILMS, PAIRS, figures
 from calcbook.chain.types import CLEAN, CONDITIONS, SERVICE
-from calcbook.faults import Collector, Faults
+from calcbook.faults import Faults
 from calcbook.library.plausibility import bands
 from calcbook.record import record_text
-
-
-def solved_of(folder: Path, body: str) -> Solved:
-    collector = Collector()
-    solved = analyse(chain_of(folder, body), collector)
-    collector.stop_if_any()
-    assert solved is not None
-    return solved
 
 
 def cooler(**changes: str) -> str:
@@ -49,7 +41,7 @@ def cautions(solved: Solved, condition: str = SERVICE) -> dict[str, CheckResult]
 
 @pytest.mark.parametrize("body", [cooler(), OIL, SPHERE, STATED, insulated_pipe()], ids=range(5))
 def test_a_sound_calculation_lies_within_every_band(tmp_path: Path, body: str) -> None:
-    solved = solved_of(tmp_path, body)
+    solved = analysed(tmp_path, body)
     assert cautions(solved) == {} and cautions(solved, CLEAN) == {}
     known = bands()
     held = list(figures(solved.chain, solved.base.solutions[SERVICE]))
@@ -88,7 +80,7 @@ def test_a_sound_calculation_lies_within_every_band(tmp_path: Path, body: str) -
 def test_a_slip_in_an_input_is_a_caution_that_names_the_band(
     tmp_path: Path, change: dict[str, str], expected: set[str]
 ) -> None:
-    solved = solved_of(tmp_path, cooler(**change))
+    solved = analysed(tmp_path, cooler(**change))
     found = cautions(solved)
     assert expected <= set(found)
     for name in expected:
@@ -101,7 +93,7 @@ def test_a_slip_in_an_input_is_a_caution_that_names_the_band(
 
 
 def test_the_flow_and_the_number_of_tubes_swapped_are_told(tmp_path: Path) -> None:
-    found = cautions(solved_of(tmp_path, cooler(m_hot="62 kg/s", N="18")))
+    found = cautions(analysed(tmp_path, cooler(m_hot="62 kg/s", N="18")))
     assert "tube film / band / velocity of a liquid in tubes" in found
 
 
@@ -109,13 +101,13 @@ def test_a_result_outside_its_band_is_told_where_no_input_is(tmp_path: Path) -> 
     # every input within its band; the oil is so slow and cold that the results are not
     body = OIL.replace("45 W/(m K)", "6 W/(m K)").replace("6 kg/s", "0.09 kg/s")
     body = body.replace("0.0002 m^2 K/W", "0.0049 m^2 K/W").replace("0.0001 m^2 K/W", "0.0049 m^2 K/W")
-    found = cautions(solved_of(tmp_path, body))
+    found = cautions(analysed(tmp_path, body))
     assert "oil film / band / velocity of a liquid in tubes" in found
     assert found["oil film / band / velocity of a liquid in tubes"].value < 0.1
 
 
 def test_a_caution_never_blocks_and_fills_nothing_in(tmp_path: Path) -> None:
-    solved = solved_of(tmp_path, cooler(R_fo="0.035 m^2 K/W"))
+    solved = analysed(tmp_path, cooler(R_fo="0.035 m^2 K/W"))
     assert solved.open_items == ()
     assert solved.base.inputs["given/R_fo"] == 0.035
     page = record_text(solved)
@@ -125,15 +117,15 @@ def test_a_caution_never_blocks_and_fills_nothing_in(tmp_path: Path) -> None:
 
 
 def test_an_allowance_is_judged_in_service_only_and_one_of_nothing_is_not(tmp_path: Path) -> None:
-    solved = solved_of(tmp_path, cooler(R_fo="0.035 m^2 K/W"))
+    solved = analysed(tmp_path, cooler(R_fo="0.035 m^2 K/W"))
     name = "outer deposit / band / fouling allowance"
     assert name in cautions(solved) and name not in cautions(solved, CLEAN)
-    assert cautions(solved_of(tmp_path, cooler(R_fo="0 m^2 K/W"))) == {}
+    assert cautions(analysed(tmp_path, cooler(R_fo="0 m^2 K/W"))) == {}
 
 
 def test_a_case_is_held_against_the_bands_like_the_base(tmp_path: Path) -> None:
     body = cooler() + "cases:\n  slip: {m_hot: {value: 182 kg/s, source: test}}\n"
-    solved = solved_of(tmp_path, body)
+    solved = analysed(tmp_path, body)
     slip = next(case for case in solved.cases if case.name == "slip")
     ids = {check.id for check in slip.checks if check.condition == SERVICE}
     assert "tube film / band / velocity of a liquid in tubes" in ids
@@ -156,7 +148,7 @@ def test_the_window_of_speed_belongs_to_the_tube_metal(
     body = cooler(m_hot=speed).replace("stainless-316-kaschnitz-2017", material)
     found = [
         name
-        for name in cautions(solved_of(tmp_path, body))
+        for name in cautions(analysed(tmp_path, body))
         if name.startswith("tube film / band / velocity in")
     ]
     assert bool(found) is warned
@@ -170,14 +162,14 @@ def test_every_edge_of_a_band_belongs_to_it(tmp_path: Path) -> None:
         (f"{band.low!r} m^2 K/W", False),
         (f"{math.nextafter(band.low, 0.0)!r} m^2 K/W", True),
     ):
-        found = cautions(solved_of(tmp_path, cooler(R_fi=text)))
+        found = cautions(analysed(tmp_path, cooler(R_fi=text)))
         assert ("inner deposit / band / fouling allowance" in found) is outside
 
 
 def test_a_metal_with_a_decimal_slipped_is_told_and_an_insulation_is_not_called_metal(tmp_path: Path) -> None:
-    found = cautions(solved_of(tmp_path, STATED.replace("16 W/(m K)", "1.6 W/(m K)")))
+    found = cautions(analysed(tmp_path, STATED.replace("16 W/(m K)", "1.6 W/(m K)")))
     assert set(found) == {"wall / band / wall conductivity of metals"}
-    solved = solved_of(tmp_path, insulated_pipe())
+    solved = analysed(tmp_path, insulated_pipe())
     held = {(figure.owner, figure.band) for figure in figures(solved.chain, solved.base.solutions[SERVICE])}
     assert ("insulation", "wall conductivity of insulations") in held
     assert ("insulation", "insulation thickness") in held
@@ -191,7 +183,7 @@ def test_a_service_holds_its_own_allowance_and_coefficient_against_what_is_typic
         "resistance: R_fo, on: outside}",
         'resistance: R_fo, on: outside, service: "cooling tower water, treated"}',
     ).replace("{U on: outside}", "{U on: outside, service: steam condenser}")
-    found = cautions(solved_of(tmp_path, named))
+    found = cautions(analysed(tmp_path, named))
     assert set(found) == {
         "outer deposit / typical / cooling tower water, treated",
         "U / typical / steam condenser",
@@ -204,7 +196,7 @@ def test_a_service_holds_its_own_allowance_and_coefficient_against_what_is_typic
     coefficient = found["U / typical / steam condenser"]
     assert coefficient.limit == "333.33 to 18 000 W/(m²·K)" and coefficient.standing == "from memory"
     # without a service the same allowance is held against the overall band only, which it meets
-    assert cautions(solved_of(tmp_path, stated)) == {}
+    assert cautions(analysed(tmp_path, stated)) == {}
 
 
 def test_an_unknown_service_is_a_fault_with_the_nearest(tmp_path: Path) -> None:
@@ -229,5 +221,5 @@ def test_every_band_has_a_place_and_every_place_a_band(tmp_path: Path) -> None:
 
 
 def test_both_conditions_are_judged_alike(tmp_path: Path) -> None:
-    solved = solved_of(tmp_path, cooler(d_i="1.575 mm"))
+    solved = analysed(tmp_path, cooler(d_i="1.575 mm"))
     assert all("geometry / band / tube bore" in cautions(solved, condition) for condition in CONDITIONS)

@@ -5,21 +5,9 @@ from __future__ import annotations
 from pathlib import Path
 
 import pytest
-from small_calculations import chain_of, givens
-
-from calcbook.chain.analysis import analyse
-from calcbook.chain.outcome import Solved
-from calcbook.faults import Collector
+from small_calculations import analysed, givens
 
 STANDARD_ATMOSPHERE = 101_325.0  # Pa, by definition (10th CGPM, 1954, resolution 4)
-
-
-def solved(folder: Path, body: str) -> Solved:
-    collector = Collector()
-    answer = analyse(chain_of(folder, body), collector)
-    collector.stop_if_any()
-    assert answer is not None
-    return answer
 
 
 def condensing(pressure: str, relation: str = "", holds_for: str = "", **more: str) -> str:
@@ -43,7 +31,7 @@ report: {{U on: outside}}
 
 
 def coefficient(folder: Path, body: str) -> float:
-    return solved(folder, body).base.results["U_service"].value
+    return analysed(folder, body).base.results["U_service"].value
 
 
 @pytest.mark.parametrize(
@@ -57,7 +45,7 @@ def coefficient(folder: Path, body: str) -> float:
 def test_what_is_derived_from_a_gauge_pressure_is_absolute(
     tmp_path: Path, typed: str, relation: str, absolute: float
 ) -> None:
-    found = solved(tmp_path, condensing(typed, relation))
+    found = analysed(tmp_path, condensing(typed, relation))
     expected = coefficient(tmp_path, condensing(f"{absolute!r} Pa(a)"))
     assert found.base.results["U_service"].value == pytest.approx(expected, rel=1e-12)
     # Without the pressure of the site the coefficient would be another by far more than that.
@@ -66,7 +54,7 @@ def test_what_is_derived_from_a_gauge_pressure_is_absolute(
 
 
 def test_a_drop_is_taken_from_a_gauge_pressure(tmp_path: Path) -> None:
-    found = solved(tmp_path, condensing("2 barg", "p_x - p_y", p_y="0.1 bar"))
+    found = analysed(tmp_path, condensing("2 barg", "p_x - p_y", p_y="0.1 bar"))
     expected = coefficient(tmp_path, condensing(f"{1.9e5 + STANDARD_ATMOSPHERE!r} Pa(a)"))
     assert found.base.results["U_service"].value == pytest.approx(expected, rel=1e-12)
     said = {item.id: item.text for item in found.base.assumptions}
@@ -87,7 +75,7 @@ def test_a_drop_is_taken_from_a_gauge_pressure(tmp_path: Path) -> None:
 def test_a_range_of_pressures_is_held_on_one_base(
     tmp_path: Path, typed: str, low: str, high: str, state: str
 ) -> None:
-    found = solved(tmp_path, condensing(typed, holds_for=f", holds for: {{p: {low} .. {high}}}"))
+    found = analysed(tmp_path, condensing(typed, holds_for=f", holds for: {{p: {low} .. {high}}}"))
     (check,) = [
         one for one in found.base.checks if one.id.endswith("holds for") and one.condition == "service"
     ]

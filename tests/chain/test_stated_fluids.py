@@ -7,15 +7,14 @@ from pathlib import Path
 
 import numpy as np
 import pytest
-from small_calculations import chain_of, givens
+from small_calculations import analysed, chain_of, givens
 
-from calcbook.chain.analysis import analyse
 from calcbook.chain.outcome import Solved
 from calcbook.chain.petroleum import CARDS, petroleum
 from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.solve import solve
 from calcbook.chain.types import SERVICE
-from calcbook.faults import Collector, Faults
+from calcbook.faults import Faults
 from calcbook.library import Library
 from calcbook.record import record_text
 
@@ -65,14 +64,6 @@ def oil(density: str = "sg", product: str = ", product: lubricating oil", **chan
     return body(text, "V", **changes)
 
 
-def solved_of(folder: Path, text: str) -> Solved:
-    collector = Collector()
-    solved = analyse(chain_of(folder, text), collector)
-    collector.stop_if_any()
-    assert solved is not None
-    return solved
-
-
 def check_of(solved: Solved, name: str, condition: str = SERVICE):  # type: ignore[no-untyped-def]
     return next(check for check in solved.base.checks if check.id == name and check.condition == condition)
 
@@ -83,16 +74,16 @@ def check_of(solved: Solved, name: str, condition: str = SERVICE):  # type: igno
 def test_the_relative_humidity_becomes_the_backends_humidity_ratio(tmp_path: Path) -> None:
     from CoolProp.HumidAirProp import HAPropsSI
 
-    solution = solved_of(tmp_path, humid()).base.solutions[SERVICE]
+    solution = analysed(tmp_path, humid()).base.solutions[SERVICE]
     asked = HAPropsSI("W", "T", 60.0 + FREEZING, "P", 1.2e5, "R", 0.6)
     # the same saturation and the same ratio of molar masses: rounding only
     assert solution.number("stream own/humidity ratio") == pytest.approx(asked, rel=1e-12)
 
 
 def test_a_humidity_ratio_is_taken_as_it_stands_and_gives_the_same(tmp_path: Path) -> None:
-    by_share = solved_of(tmp_path, humid())
+    by_share = analysed(tmp_path, humid())
     wet = by_share.base.solutions[SERVICE].number("stream own/humidity ratio")
-    by_ratio = solved_of(tmp_path, humid(f"{{humidity ratio: {{value: {wet!r}, source: test}}}}"))
+    by_ratio = analysed(tmp_path, humid(f"{{humidity ratio: {{value: {wet!r}, source: test}}}}"))
     assert by_ratio.base.results["U_service"].value == pytest.approx(
         by_share.base.results["U_service"].value, rel=1e-12
     )
@@ -101,13 +92,13 @@ def test_a_humidity_ratio_is_taken_as_it_stands_and_gives_the_same(tmp_path: Pat
 @pytest.mark.parametrize(("cold", "state"), [("20 degC", "outside"), ("55 degC", "within")])
 def test_a_wall_below_the_dew_point_is_told(tmp_path: Path, cold: str, state: str) -> None:
     # 60 °C and 60 % at 1.2 bar: the dew point is 49.4 °C
-    check = check_of(solved_of(tmp_path, humid(T_c=cold)), "tube film / wall phase / condenses")
+    check = check_of(analysed(tmp_path, humid(T_c=cold)), "tube film / wall phase / condenses")
     assert check.state == state and check.level == "range" and check.that == "T_s > T_dew"
     assert check.limit.startswith("> 49.3")
 
 
 def test_what_was_decided_for_humid_air_is_said(tmp_path: Path) -> None:
-    page = record_text(solved_of(tmp_path, humid()))
+    page = record_text(analysed(tmp_path, humid()))
     assert "those of a kilogram of humid air" in page
     assert "humidity ratio W | 0.621945·φ·x_ws/(1 − φ·x_ws)" in page
     assert "humid air (ASHRAE RP-1485)" in page
@@ -149,7 +140,7 @@ def test_derivatives_are_those_of_differences(tmp_path: Path, text: str) -> None
 )
 def test_a_fluid_that_cannot_be_is_a_fault(tmp_path: Path, text: str, code: str) -> None:
     with pytest.raises(Faults) as caught:
-        solved_of(tmp_path, text)
+        analysed(tmp_path, text)
     assert code in {fault.code for fault in caught.value.faults}
 
 
@@ -198,7 +189,7 @@ def test_slopes_of_the_cards_are_those_of_their_values(name: str) -> None:
 
 
 def test_the_record_shows_the_cards_their_relations_and_their_standing(tmp_path: Path) -> None:
-    solved = solved_of(tmp_path, oil())
+    solved = analysed(tmp_path, oil())
     page = record_text(solved)
     for card in CARDS.values():
         assert f"method {card}" in solved.cards and card in page
@@ -211,17 +202,17 @@ def test_the_record_shows_the_cards_their_relations_and_their_standing(tmp_path:
 def test_a_product_that_is_not_stated_is_an_assumption_and_a_range_outside_an_open_item(
     tmp_path: Path,
 ) -> None:
-    solved = solved_of(tmp_path, oil(product=""))
+    solved = analysed(tmp_path, oil(product=""))
     assert any(
         item.id == "stream own/product" and "crude oil" in item.text for item in solved.base.assumptions
     )
     # above 400 °F the cards are outside; below the span there is no value at all
-    hot = solved_of(tmp_path, oil(T_own="215 degC", T_c="210 degC"))
+    hot = analysed(tmp_path, oil(T_own="215 degC", T_c="210 degC"))
     assert any("petroleum-conductivity-cragoe-1929 / temperature" in item.id for item in hot.open_items)
 
 
 def test_viscosity_is_d341_times_density(tmp_path: Path) -> None:
-    solution = solved_of(tmp_path, oil(T_own="40 degC", T_c="45 degC")).base.solutions[SERVICE]
+    solution = analysed(tmp_path, oil(T_own="40 degC", T_c="45 degC")).base.solutions[SERVICE]
     density, viscosity = (solution.number(f"stream own/{name}") for name in ("density", "viscosity"))
     # 46 mm2/s at 40 °C is one of the two points; the standard's inverse returns it to 1e-3
     assert viscosity / density == pytest.approx(46e-6, rel=1e-3)
