@@ -9,7 +9,7 @@ from calcbook.chain.uncertainty_outcome import Budget, BudgetRow, SampledResult,
 from calcbook.formulas.names import written_name
 from calcbook.quantities import QuantityKind, in_unit
 from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Table
-from calcbook.record.numbers import NOT_KNOWN, fixed, number, percent, report_unit, unit_text
+from calcbook.record.numbers import fixed, number, percent, report_unit, unit_text
 from calcbook.record.page import Page, case_name
 
 STANDARD_DIGITS = 2
@@ -18,6 +18,8 @@ FACTOR_PLACES = 3
 # Above this share, samples without an answer or outside a limit are a caution.
 MOST_UNSAID = 0.001
 AT_STATED = " at the stated values"
+# What a figure on a scale with a zero of its own is given as a part of its value.
+NO_PART = "none of a temperature"
 NOT_SEPARABLE = "not separable"
 
 
@@ -211,7 +213,7 @@ def _summary_row(budget: Budget, page: Page) -> tuple[str, ...]:
         number(in_unit(budget.standard, _step(unit)), STANDARD_DIGITS),
         fixed(budget.factor, FACTOR_PLACES),
         number(in_unit(budget.expanded, _step(unit)), STANDARD_DIGITS),
-        NOT_KNOWN if budget.kind.scale == "point" else percent(budget.relative),
+        NO_PART if budget.kind.scale == "point" else percent(budget.relative),
     )
 
 
