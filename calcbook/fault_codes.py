@@ -130,6 +130,7 @@ CODES: dict[str, str] = {
     "temperature-missing": "a bulk temperature that is needed and not stated",
     "wall-inverted": "a wall whose outside does not lie outside its inside",
     "card-withdrawn": "a card that is withdrawn: use its successor",
+    "step-not-possible": "a figure of the chain that its quantity cannot have",
     "limit-stops": "a limit outside which no number is given",
     "accept-unknown": "an accepted check, condition or case that does not exist",
     "sweep-givens": "a sweep varies one or two givens",

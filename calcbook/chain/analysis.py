@@ -24,6 +24,7 @@ from calcbook.chain.findings import (
     celsius,
     ending_properties,
     jump_items,
+    must_be,
     root_items,
     stream_findings,
     wall_checks,
@@ -46,6 +47,7 @@ from calcbook.chain.outcome import (
     TermRow,
 )
 from calcbook.chain.plausible import band_checks
+from calcbook.chain.possible import impossible_steps
 from calcbook.chain.pressure import (
     drops,
     evaluate_pressure_drops,
@@ -71,10 +73,11 @@ from calcbook.chain.types import (
     StreamState,
 )
 from calcbook.faults import Collector, Place, nearest_names, shown
+from calcbook.formulas import number_text
 from calcbook.library import vocabulary
 from calcbook.library.operations import run
 from calcbook.properties import SATURATION_FRACTION
-from calcbook.quantities import Quantity, QuantityFault, QuantityKind, as_kind
+from calcbook.quantities import Quantity, QuantityFault, QuantityKind, as_kind, unit_display
 
 Array = np.ndarray
 CONTROLLING_SHARE = 0.5
@@ -157,6 +160,8 @@ class _Analysis:
         self.dimensions = dict(chain.dimensions)
         self.used_cards: dict[str, str] = dict(chain.cards)
         self.inputs: dict[str, dict[str, np.ndarray]] = {}
+        # Steps and cases that are told to be impossible.
+        self.impossible: set[tuple[str, str]] = set()
         # The named results of the base case, which is solved first.
         self.results: dict[str, Result] = {}
 
@@ -237,6 +242,8 @@ class _Analysis:
             ):
                 self._stop_if_limit(name, solution)
                 self._explain(name, solution)
+                if not self.collector:
+                    self._stop_if_impossible(name, solution)
                 if self.collector:
                     return None
                 raise NotConverged(self.chain.calculation.number, name, condition)
@@ -247,6 +254,9 @@ class _Analysis:
         for check in checks:
             if check.level == "stop" and check.state == "outside":
                 self._report_stop(check)
+        if not self.collector:
+            for solution in solutions.values():
+                self._stop_if_impossible(name, solution)
         # A number that a limit stops is not there to be judged.
         criteria = () if self.collector else self.criteria(name, results, solutions)
         terms = {condition: self._terms(solution) for condition, solution in solutions.items()}
@@ -296,17 +306,40 @@ class _Analysis:
                 )
                 return
 
-    def _report_stop(self, check: CheckResult) -> None:
+    def _stop_if_impossible(self, name: str, solution: Solution) -> None:
+        """The first step of each term whose value its quantity cannot have: what follows from it is no number."""
+        told: set[str] = set()
+        for step, _ in impossible_steps(self.chain, solution):
+            if step.owner in told or (step.id, name) in self.impossible:
+                continue
+            told.add(step.owner)
+            self.impossible.add((step.id, name))
+            kind = step.kind
+            assert kind is not None, "a step without a quantity has no bound"
+            relation = getattr(getattr(step.operation, "relation", None), "text", "")
+            self.collector.add(
+                "step-not-possible",
+                self._place_of(step.owner),
+                f"{f'case {name}: ' if name else ''}{step.title} of {step.owner} cannot be",
+                found=f"{number_text(solution.number(step.id), 4)} {unit_display(kind.unit)}".rstrip(),
+                expected=f"{kind.name}{must_be(kind)}{f'; it is {step.symbol} = {relation}' if relation else ''}",
+            )
+
+    def _place_of(self, owner: str) -> Place:
+        """Where the term, the stream or the part that a step or check belongs to stands in the file."""
         calculation = self.chain.calculation
         places = {name: stream.place for name, stream in self.chain.streams.items()}
-        places |= {term.name: term.place for term in calculation.resistances}
-        for owner, part in ((DUTY, calculation.duty), (SPECIFIED, calculation.fouling_specified)):
+        places |= {f"stream {name}": stream.place for name, stream in self.chain.streams.items()}
+        places |= {term.name: term.place for term in calculation.every_term}
+        for part_owner, part in ((DUTY, calculation.duty), (SPECIFIED, calculation.fouling_specified)):
             if part is not None:
-                places[owner] = part.place
-        place = places.get(check.owner, calculation.place)
+                places[part_owner] = part.place
+        return places.get(owner, calculation.place)
+
+    def _report_stop(self, check: CheckResult) -> None:
         self.collector.add(
             "limit-stops",
-            place,
+            self._place_of(check.owner),
             f"{f'case {check.case}: ' if check.case else ''}{check.id}: no number is given outside this limit",
             found=check.figure,
             expected=f"{check.limit} ({check.because})",

@@ -136,13 +136,20 @@ def _check_derived(chain: Chain, values: Mapping[str, Any], collector: Collector
             _check_scale(item, kind, moves[symbol], collector, case)
         if cannot_be[symbol]:
             what = f"the {f'{kind.name} ' if kind is not None else ''}{symbol} that is derived here"
-            must = _must(kind) if kind is not None else ""
+            must = must_be(kind) if kind is not None else ""
             unit = kind.unit if kind is not None else si_unit(chain.dimensions[f"derived/{symbol}"])
             _report_derived(item.place, what, value, unit, must, collector, case)
 
 
-def _must(kind: QuantityKind) -> str:
-    return " above absolute zero" if kind.scale == "point" else SIGNS.get(kind.sign, "")
+def must_be(kind: QuantityKind) -> str:
+    """What a quantity of a kind must be, in words; empty where it may be anything."""
+    words = " above absolute zero" if kind.scale == "point" else SIGNS.get(kind.sign, "")
+    bounds = " and ".join(
+        text
+        for text in (kind.least and f"{kind.least} or more", kind.most and f"{kind.most} or less")
+        if text
+    )
+    return f"{words}{f' ({bounds})' if bounds else ''}"
 
 
 def impossible_derived(chain: Chain, values: Mapping[str, Array]) -> Iterator[tuple[str, Array]]:
