@@ -46,6 +46,7 @@ from calcbook.chain.findings import (
 )
 from calcbook.chain.flips_outcome import CONTROLLING, CRITERION, LIMIT, METHOD
 from calcbook.chain.outcome import CaseOutcome
+from calcbook.chain.possible import impossible_steps
 from calcbook.chain.pressure import drops, evaluate_pressure_drops, law_choice
 from calcbook.chain.solve import Solution, conditions_of, halves_of, numbers_in, solve_both
 from calcbook.chain.types import (
@@ -230,6 +231,12 @@ def _solve(
         if verdict.kind == LIMIT and verdict.level == "stop":
             reason = f"no number is given outside {verdict.id}"
             samples.mark(verdict.codes == BROKEN, reason, samples.solved)
+    size = len(samples.solved)
+    for step, wrong in impossible_steps(chain, both):
+        everywhere = np.broadcast_to(wrong, (2 * size,))
+        samples.mark(
+            everywhere[:size] | everywhere[size:], f"{step.title} of {step.owner} cannot be", samples.solved
+        )
     for solution in solutions.values():
         open_circuit = ~solution.converged | ~np.isfinite(solution.figure(chain.results["U"]))
         if not open_circuit.any():
