@@ -97,6 +97,8 @@ def _brief_rows(page: Page) -> list[tuple[str, str, str]]:
             words = _fouling_words(page, condition)
             rows.append(("U in service" if condition == "service" else "U clean", value, f"{basis}; {words}"))
     cleanliness, excess = page.result("cleanliness"), page.result("excess_surface")
+    if not _has_fouling(page):
+        cleanliness = excess = None
     if cleanliness is not None:
         rows.append(("Cleanliness", number(cleanliness.value, CONCLUSION_DIGITS), "U_service/U_clean"))
     if excess is not None:
@@ -153,9 +155,13 @@ def _deposit_words(page: Page, side: str, condition: str) -> str:
     return "; thickness and roughness of a deposit are not counted"
 
 
+def _has_fouling(page: Page) -> bool:
+    return any(row.kind == "fouling" for row in page.base.terms["service"])
+
+
 def _fouling_words(page: Page, condition: str) -> str:
     """What sets the two conditions apart; nothing does where no fouling term is stated."""
-    if not any(row.kind == "fouling" for row in page.base.terms[condition]):
+    if not _has_fouling(page):
         return "no fouling term is stated"
     return "with the fouling terms" if condition == "service" else "without the fouling terms"
 
