@@ -8,7 +8,7 @@ from dataclasses import dataclass, field, replace
 from calcbook.calcfile.calculation import Term, Value
 from calcbook.chain.fluids import FixedOperation, LiquidOperation, PropertyOperation
 from calcbook.chain.scope import Scope
-from calcbook.chain.types import Branch, Candidate, ChainCheck, ChainStep, ChoiceRow, StreamState
+from calcbook.chain.types import ABSENT, Branch, Candidate, ChainCheck, ChainStep, ChoiceRow, StreamState
 from calcbook.faults import Collector, Faults, nearest_names, shown
 from calcbook.formulas import Relation, parse_expression
 from calcbook.library import Library, Program
@@ -340,7 +340,7 @@ class FilmScope:
         if need.quantity.name in self.dimensions:
             return self.dimensions[need.quantity.name]
         if need.absent is not None:
-            name = f"{self.owner}/{need.symbol} absent"
+            name = f"{self.owner}/{need.symbol}{ABSENT}"
             unit = "" if need.quantity.unit == "1" else f" {unit_display(need.quantity.unit)}"
             self.scope.assume(
                 f"{self.owner}/{need.symbol}",

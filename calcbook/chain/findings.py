@@ -17,6 +17,7 @@ from calcbook.chain.outcome import CheckResult
 from calcbook.chain.roots import other_heat_flows
 from calcbook.chain.solve import Solution, chosen
 from calcbook.chain.types import (
+    ABSENT,
     CONDITIONS,
     SERVICE,
     Branch,
@@ -31,7 +32,7 @@ from calcbook.chain.types import (
 from calcbook.faults import Collector, Place
 from calcbook.formulas import number_text
 from calcbook.library import vocabulary
-from calcbook.library.operations import run
+from calcbook.library.operations import RelationOperation, run
 from calcbook.properties import FluidAtPressure, PropertyFault
 from calcbook.quantities import QuantityKind, si_unit, unit_display
 
@@ -738,6 +739,43 @@ def _of_other_methods(chain: Chain, solutions: Mapping[str, Solution]) -> set[st
     return unused
 
 
+def _idle(chain: Chain, solutions: Mapping[str, Solution]) -> set[str]:
+    """Ids of figures taken for want of a stated one that no relation looks at here: an exponent of gases, for a liquid."""
+    idle: set[str] = set()
+    for group in (chain.inner, chain.outer):
+        for branch in group.branches:
+            drop = branch.pressure_drop
+            for name in (name for name in chain.constants if name.startswith(f"{branch.name}/")):
+                if not name.endswith(ABSENT):
+                    continue
+                acts = any(
+                    _looks_at(step, name, solution)
+                    for solution in solutions.values()
+                    for step in (*chosen(branch, solution).steps, *(drop.steps if drop is not None else ()))
+                )
+                if not acts:
+                    idle.add(name.removesuffix(ABSENT))
+    return idle
+
+
+def _looks_at(step: ChainStep, constant: str, solution: Solution) -> bool:
+    """Whether a step has another value where a constant moves, with the others that are taken for want of a stated one:
+    lanes that are not there have no width either."""
+    if constant not in step.inputs.values():
+        return False
+    if not isinstance(step.operation, RelationOperation) or not solution.values.keys() >= set(
+        step.inputs.values()
+    ):
+        return True
+    arguments = {symbol: solution.values[bound] for symbol, bound in step.inputs.items()}
+    moved = {
+        symbol: 1.01 * np.asarray(value) + 1e-3 if step.inputs[symbol].endswith(ABSENT) else np.asarray(value)
+        for symbol, value in arguments.items()
+    }
+    now, then = (step.operation.value(figures) for figures in (arguments, moved))
+    return not np.array_equal(now, then)
+
+
 def _needed(candidate: Candidate) -> Iterator[str]:
     """The symbols that a method and the cards it uses take from outside."""
     yield from (need.symbol for card in candidate.cards for need in card.needs)
@@ -745,7 +783,7 @@ def _needed(candidate: Candidate) -> Iterator[str]:
 
 def assumptions_of(chain: Chain, solutions: Mapping[str, Solution]) -> tuple[RunnerAssumption, ...]:
     """The runner's decisions: those of the build, and those that only a solution shows."""
-    unused = _of_other_methods(chain, solutions)
+    unused = _of_other_methods(chain, solutions) | _idle(chain, solutions)
     found: dict[str, RunnerAssumption] = {
         item.id: item for item in chain.assumptions if item.id not in unused
     }

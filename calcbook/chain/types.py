@@ -23,6 +23,8 @@ Array = np.ndarray
 CLEAN, SERVICE = "clean", "service"
 CONDITIONS = (CLEAN, SERVICE)
 # The figure that is 1 in service and 0 clean: it narrows a bore by a deposit.
+# How the constant of a figure ends that is taken for want of a stated one.
+ABSENT = " absent"
 SERVICE_FLAG = "condition/service"
 
 

@@ -211,3 +211,19 @@ def test_the_saturation_temperature_that_steam_loses_is_looked_at() -> None:
     assert (check.level, check.state) == ("caution", "outside")
     assert check.value == pytest.approx(1.92, abs=0.01)
     assert float(check.limit.split()[1]) == pytest.approx(0.05 * (100.16 - 72.1), abs=0.01)
+
+
+def test_what_no_relation_looks_at_is_no_assumption(tmp_path: Path) -> None:
+    """The exponent of gases acts on a heated gas alone; lanes that are not there act with their width."""
+    text = (CALCS / "ac-501.yaml").read_text(encoding="utf-8")
+    heated = tmp_path / "ac-501.yaml"
+    assert text.count("T_air: {value: 24 degC") == 1
+    heated.write_text(text.replace("T_air: {value: 24 degC", "T_air: {value: 160 degC"), encoding="utf-8")
+
+    def said(path: Path) -> set[str]:
+        return {item.id for item in solve_file(path, for_record=False).base.assumptions}
+
+    assert "nitrogen film/n_gas" in said(heated)
+    assert "nitrogen film/n_gas" not in said(CALCS / "ac-501.yaml")
+    assert "tube-side film/n_gas" not in said(CALCS / "wc-101.yaml")
+    assert {"oil film/N_pl", "oil film/w_pl"} <= said(CALCS / "bd-981.yaml")
