@@ -24,7 +24,7 @@ from calcbook.chain.saturation_loss import with_saturation_losses
 from calcbook.chain.scope import Scope, unnamed_kind
 from calcbook.chain.services import check_services
 from calcbook.chain.specified import SpecifiedFouling
-from calcbook.chain.streams import lay_out_stream
+from calcbook.chain.streams import lay_out_stream, viscosity_checks
 from calcbook.chain.surfaces import Shape, Wall, lay_out_shape
 from calcbook.chain.types import (
     SERVICE_FLAG,
@@ -102,6 +102,7 @@ class _Builder:
             self.open_figures = self.specified.open_figures()
         has_duty = self.duty is not None and self.duty.balance(self.streams)
         self.checks += lay_out_cards(scope, self.library, self.streams)
+        self.checks += viscosity_checks(scope, self.streams)
         terms = calculation.resistances
         walls = tuple(term for term in terms if term.kind == "wall")
         if calculation.geometry is None or not calculation.geometry.shape or not terms:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import replace
 
 from calcbook import properties
@@ -10,10 +11,11 @@ from calcbook.calcfile.empty import is_empty
 from calcbook.chain.fluids import BoilingOperation, FluidSource, PropertyOperation
 from calcbook.chain.petroleum import petroleum
 from calcbook.chain.scope import Scope
-from calcbook.chain.types import StreamState
+from calcbook.chain.types import ChainCheck, StreamState
 from calcbook.formulas import parse_expression
 from calcbook.library import Library, vocabulary
-from calcbook.properties import PropertyFault
+from calcbook.library.cards import Limit
+from calcbook.properties import LAW_REACH, PropertyFault
 from calcbook.quantities import QuantityFault, as_kind, si_unit
 
 SATURATION = "saturation"
@@ -308,6 +310,41 @@ def _tabulated(scope: Scope, text: FluidText) -> properties.Fluid:
     points = _astm_points(scope, text)
     columns["kinematic viscosity"] = ([one for one, _ in points], [two for _, two in points])
     return properties.tabulated(columns, viscosity_law="astm d341", name=text.name)
+
+
+def viscosity_checks(scope: Scope, streams: Mapping[str, StreamState]) -> list[ChainCheck]:
+    """How far a viscosity after ASTM D341 is carried beyond its two points, at the bulk of each stream."""
+    kelvin = vocabulary()["temperature"].dimension
+    practice, checks = "common practice", []
+    for state in streams.values():
+        text, owner = state.fluid.text, f"stream {state.name}"
+        if not text.astm or not state.temperature:
+            continue
+        ends = sorted(point for point, _ in _astm_points(scope, text))
+        bounds = {
+            "T_low": scope.constant(f"{owner}/viscosity from", ends[0], kelvin),
+            "T_high": scope.constant(f"{owner}/viscosity to", ends[1], kelvin),
+            "reach": scope.constant(f"{owner}/viscosity reach", LAW_REACH, kelvin),
+        }
+        for name, that, level, because in (
+            (
+                "between the points",
+                "T_low <= T <= T_high",
+                "caution",
+                "beyond its points it is carried on by the law",
+            ),
+            (
+                "reach of the points",
+                "T_low - reach <= T <= T_high + reach",
+                "range",
+                f"more than {LAW_REACH:g} K beyond its points the law is no measurement of this liquid",
+            ),
+        ):
+            symbols = parse_expression(that)
+            limit = Limit(f"viscosity {name}", symbols, level, because, practice, practice, state.place)
+            inputs = {"T": state.temperature, **{one: bounds[one] for one in symbols.symbols if one != "T"}}
+            checks.append(ChainCheck(f"{owner} / astm d341 / {limit.id}", owner, "astm d341", limit, inputs))
+    return checks
 
 
 def _astm_points(scope: Scope, text: FluidText) -> list[tuple[float, float]]:

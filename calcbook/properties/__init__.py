@@ -18,10 +18,19 @@ from calcbook.properties.fluid import Fluid, FluidAtPressure
 from calcbook.properties.humid import SATURATION_FRACTION, humid_air
 from calcbook.properties.names import fluid_names, mixture_names
 from calcbook.properties.several import rows_of_several
-from calcbook.properties.stated import Relation, ViscosityLaw, astm_d341, constant, related, tabulated
+from calcbook.properties.stated import (
+    LAW_REACH,
+    Relation,
+    ViscosityLaw,
+    astm_d341,
+    constant,
+    related,
+    tabulated,
+)
 from calcbook.properties.store import clear_memory
 
 __all__ = [
+    "LAW_REACH",
     "PROPERTIES",
     "SATURATION_FRACTION",
     "SATURATION_PROPERTIES",

@@ -227,3 +227,23 @@ def test_what_no_relation_looks_at_is_no_assumption(tmp_path: Path) -> None:
     assert "nitrogen film/n_gas" not in said(CALCS / "ac-501.yaml")
     assert "tube-side film/n_gas" not in said(CALCS / "wc-101.yaml")
     assert {"oil film/N_pl", "oil film/w_pl"} <= said(CALCS / "bd-981.yaml")
+
+
+def test_a_viscosity_that_is_carried_beyond_its_points_is_told(tmp_path: Path) -> None:
+    """Points at 20 and 50 degC: at 58 degC a caution, at 95 degC, more than 40 K beyond, an open item."""
+    text = (CALCS / "co-993.yaml").read_text(encoding="utf-8")
+    old = "T_c:  {value: 58 degC"
+    assert text.count(old) == 1
+    found = {}
+    for figure in ("45", "58", "95"):
+        path = tmp_path / f"co-{figure}.yaml"
+        path.write_text(text.replace(old, f"T_c:  {{value: {figure} degC"), encoding="utf-8")
+        checks = solve_file(path, for_record=False).base.checks
+        found[figure] = [
+            one.state for one in checks if "/ viscosity " in one.id and one.condition == "service"
+        ]
+    assert found == {
+        "45": ["within", "within"],
+        "58": ["outside", "within"],
+        "95": ["outside", "outside"],
+    }
