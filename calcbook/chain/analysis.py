@@ -1313,7 +1313,14 @@ def _accuracy_words(branch: Branch, candidate: Candidate) -> list[str]:
     """How good the method is said to be, and by whom."""
     stated = candidate.method.accuracy
     if stated is None:
-        return [f"{branch.name}: no accuracy of {candidate.method.id} is stated."]
+        used = "; ".join(
+            f"{card.id}, which it uses: within {card.accuracy.within}"
+            for card in candidate.cards
+            if card.accuracy is not None and card.gives in ("h", "Nu")
+        )
+        return [
+            f"{branch.name}: no accuracy of {candidate.method.id} itself is stated{f'; {used}' if used else ''}."
+        ]
     return [
         f"{branch.name}: accuracy of {candidate.method.id} within {stated.within}, {stated.coverage}; stated by"
         f" {stated.stated_by} (standing: {stated.standing})."

@@ -885,7 +885,7 @@ def _choice_figures(branch: Branch, solution: Solution) -> str:
         bound = next(row.inputs[symbol] for row in branch.choice if symbol in row.inputs)
         value = solution.number(bound)
         if symbol in ("heated", "liquid"):
-            texts.append(f"{symbol} {'yes' if value else 'no'}")
+            texts.append(symbol if value else f"not {symbol}")
         elif not bound.startswith(f"{branch.name}/with"):
             texts.append(f"{symbol} = {number_text(value, 5)}")
     return ", ".join(texts) or "the only method of the table"

@@ -110,7 +110,8 @@ def lifecycle_of(calc_path: Path, solved: Solved | None, output: Path) -> Lifecy
         current.digest.get(part) == getattr(content.digest, part) for part in PARTS
     )
     state = _state(judged, calculation.settings, copies, current if is_current else None, kept.void)
-    confirmation = PRELIMINARY if items else CONFIRMED
+    is_issued_so = current is not None and is_current and current.kind != FINAL
+    confirmation = PRELIMINARY if items or is_issued_so else CONFIRMED
     return Lifecycle(
         calculation.number,
         calculation.revision,

@@ -36,7 +36,8 @@ def test_a_criterion_inside_its_uncertainty_is_no_plain_verdict() -> None:
     first = answer.base.criteria[0]
     assert first.met and abs(first.margin) < budget.expanded
     assert "the limit lies within the expanded uncertainty" in line_with("wc-105", "| criterion 1")
-    assert line_with("wc-105", "| criterion 2").split(" | ")[-2] == "criterion met"
+    verdict = line_with("wc-105", "| criterion 2").split(" | ")[-2]
+    assert verdict == "criterion met; not met on day one: turned down"
 
 
 def test_a_proposal_says_what_it_does_not_hold() -> None:
@@ -247,3 +248,18 @@ def test_a_viscosity_that_is_carried_beyond_its_points_is_told(tmp_path: Path) -
         "58": ["outside", "within"],
         "95": ["outside", "outside"],
     }
+
+
+def test_a_given_whose_tolerance_reaches_another_verdict_is_named_beside_it() -> None:
+    """The flow at which the pressure drop reaches its limit lies 0.59 of its ± 2 % away, by the distance to flip."""
+    solved = solve_file(CALCS / "hr-821.yaml")
+    flip = next(
+        one
+        for one in solved.flips.of_kind("criterion")
+        if (one.id, one.case, one.input.symbol) == ("criterion 2", "yearly cleaning", "m_h")
+    )
+    assert 0.5 < abs(flip.tolerances) < 0.7
+    assert "; m_h alone turns it at 0.59 of its tolerance" in line_with(
+        "hr-821", "| criterion 2 | yearly cleaning"
+    )
+    assert "alone turns it" not in line_with("hr-821", "| criterion 2 | base")

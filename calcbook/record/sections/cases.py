@@ -180,7 +180,7 @@ def _case_checks(case: CaseOutcome, page: Page) -> list[Block]:
         if check not in within
     )
     words = Paragraph(
-        f"{counted(len(within), 'limit is', 'limits are')} within or do not count, of {len(case.checks)}."
+        f"Of {counted(len(case.checks), 'limit', 'limits')} {len(within)} are within or do not count here."
     )
     if not rows:
         return [words]

@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+from calcbook.chain.flips_outcome import CRITERION
 from calcbook.chain.named_results import pressure_drop_of
 from calcbook.chain.outcome import CriterionResult
 from calcbook.chain.pressure import acting_methods, drops
+from calcbook.formulas.names import written_name
 from calcbook.record.numbers import (
     CONCLUSION_DIGITS,
     PLAIN_DIGITS,
@@ -30,6 +32,7 @@ def criterion_row(item: CriterionResult, page: Page) -> tuple[str, ...]:
     value, limit = apart(item.limit if item.words else item.value, item.limit, unit, point, PLAIN_DIGITS)
     verdict = "criterion met" if item.met else "criterion not met"
     verdict += _of_pressure_drop(item, page) or certainty_words(page.solved.uncertainty, item)
+    verdict += _within_a_tolerance(item, page) + _on_day_one(item, page)
     return (
         item.id,
         case_name(item.case),
@@ -40,6 +43,33 @@ def criterion_row(item: CriterionResult, page: Page) -> tuple[str, ...]:
         verdict,
         item.source or "no source",
     )
+
+
+def _within_a_tolerance(item: CriterionResult, page: Page) -> str:
+    """The given whose own tolerance reaches another verdict first, where no probability says as much."""
+    found = page.solved.flips
+    sampled = page.solved.uncertainty.sampling if page.solved.uncertainty is not None else None
+    if found is None or sampled is not None:
+        return ""
+    flips = [
+        flip
+        for flip in found.of_kind(CRITERION)
+        if (flip.id, flip.case) == (item.id, item.case) and flip.is_within_tolerance
+    ]
+    if not flips:
+        return ""
+    nearest = min(flips, key=lambda flip: abs(flip.tolerances))
+    name = written_name(nearest.input.symbol)
+    return f"; {name} alone turns it at {number(abs(nearest.tolerances), 2)} of its tolerance"
+
+
+def _on_day_one(item: CriterionResult, page: Page) -> str:
+    """The states of the clean unit at the same inlets in which a criterion that is met here is not."""
+    day = page.solved.rating.day_one if page.solved.rating is not None else None
+    failed = [
+        one.case for one in (day.criteria if day is not None else ()) if one.id == item.id and not one.met
+    ]
+    return f"; not met on day one: {', '.join(failed)}" if failed and item.met and not item.case else ""
 
 
 def _of_pressure_drop(item: CriterionResult, page: Page) -> str:

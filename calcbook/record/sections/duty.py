@@ -246,7 +246,7 @@ def two_ways(page: Page) -> list[Block]:
                 ),
             ),
         ),
-        Paragraph("The two agree where the heat balances close; what they differ by is their closure error."),
+        Paragraph("The two agree where the heat balances close."),
     ]
 
 

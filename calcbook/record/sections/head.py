@@ -22,10 +22,12 @@ from calcbook.record.sections.growth import time_brief_rows
 from calcbook.record.sections.survey import survey_brief_rows
 from calcbook.record.sections.uncertainty import how_sure
 
+PRELIMINARY = "preliminary"
+
 
 def confirmation(page: Page) -> str:
-    """Preliminary while any open item exists, else confirmed."""
-    return "preliminary" if page.is_preliminary else "confirmed"
+    """Preliminary while any open item exists or where it was issued so, else confirmed."""
+    return PRELIMINARY if page.is_preliminary or page.life.issued.startswith(PRELIMINARY) else "confirmed"
 
 
 def title_block(page: Page) -> list[Block]:
@@ -68,7 +70,7 @@ def _signed(page: Page, role: str) -> str:
 def _confirmation_words(page: Page) -> str:
     items = len(page.solved.open_items)
     if not items:
-        return confirmation(page)
+        return confirmation(page) + (", as it was issued" if confirmation(page) == PRELIMINARY else "")
     return f"{confirmation(page)}: {counted(items, 'open item', 'open items')}, listed in section 2"
 
 

@@ -135,11 +135,16 @@ def _tolerance(given: Given) -> str:
     tolerance = given.tolerance
     if tolerance is None:
         return "none stated"
+    text = tolerance.text
+    quantity = given.value.quantity
+    if quantity is not None and quantity.unit_text == "%" and text.endswith("%"):
+        # Of 40 % with ± 2 %: a part of the figure, and no points.
+        text += " of it"
     words = {
-        "rectangular": f"± {tolerance.text}",
-        "triangular": f"± {tolerance.text}, triangular",
-        "standard": f"standard {tolerance.text}",
-        "expanded": f"expanded {tolerance.text}, k = {number(tolerance.factor)}",
+        "rectangular": f"± {text}",
+        "triangular": f"± {text}, triangular",
+        "standard": f"standard {text}",
+        "expanded": f"expanded {text}, k = {number(tolerance.factor)}",
     }[tolerance.kind]
     if math.isinf(tolerance.degrees):
         return words

@@ -6,7 +6,7 @@ from collections.abc import Callable
 
 from calcbook.chain.analysis import is_found_later, keeps_what_is_found_later
 from calcbook.chain.outside import stands_in_the_open
-from calcbook.chain.types import CONDITIONS, SERVICE
+from calcbook.chain.types import CONDITIONS, SERVICE, Chain
 from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Quote, Table
 from calcbook.record.numbers import celsius, in_report_unit, percent
 from calcbook.record.page import HOUSE_METHOD, Page, case_name, counted
@@ -88,6 +88,11 @@ def _ranges(page: Page) -> str:
     )
 
 
+def _has_no_vapour(chain: Chain, name: str) -> bool:
+    """Whether boiling of a fluid at the wall is not checked, as the assumptions say as well."""
+    return chain.fluids[name].fluid.text.kind not in ("name", "humid air")
+
+
 def _wall_phase(page: Page) -> str:
     checks = [check for check in page.every_check() if check.card == "wall phase"]
     meant = [
@@ -97,6 +102,9 @@ def _wall_phase(page: Page) -> str:
         if branch.situation is not None and branch.situation.changes_phase
     ]
     change = f" A change of phase is meant: {', '.join(meant)}." if meant else ""
+    blind = [name for name in page.chain.fluids if _has_no_vapour(page.chain, name)]
+    if blind:
+        change += f" Boiling is not checked for {', '.join(blind)}: no vapour pressure is known."
     failed = [check for check in checks if check.state != "within"]
     if not checks:
         return "No film has a fluid whose phase at the wall could be checked."
@@ -162,7 +170,13 @@ def _criteria(page: Page) -> str:
         else ""
     )
     words = f"{len(items) - len(failed)} of {counted(len(items), 'criterion', 'criteria')} met{words}."
-    return " ".join((words, *_not_judged(page)))
+    return " ".join((words, *_failed_on_day_one(page), *_not_judged(page)))
+
+
+def _failed_on_day_one(page: Page) -> list[str]:
+    day = page.solved.rating.day_one if page.solved.rating is not None else None
+    failed = [f"{item.id}, {item.case}" for item in (day.criteria if day is not None else ()) if not item.met]
+    return [f"Not met on day one: {'; '.join(failed)}."] if failed else []
 
 
 def _not_judged(page: Page) -> list[str]:

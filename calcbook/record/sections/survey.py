@@ -54,6 +54,8 @@ def survey_brief_rows(page: Page) -> list[tuple[str, str, str]]:
     if outcome is None or proposed is None:
         return []
     basis = f"{proposed.title}; {outcome.model} on {counted(outcome.fitted, 'row', 'rows')} of plant data"
+    if survey_cautions(outcome):
+        basis += "; what limits it stands in section 14"
     return [
         (
             "Fouling allowance proposed",
@@ -211,7 +213,8 @@ def _fit(outcome: SurveyOutcome, page: Page) -> list[Block]:
         f"Growth model {outcome.model_title} ({outcome.model}): {outcome.relation}. Least squares over"
         f" {counted(outcome.fitted, 'row', 'rows')}; standard deviation of a row about the fit"
         f" {number(outcome.deviation, DIGITS)} m²·K/W, correlation of neighbouring residuals"
-        f" {number(outcome.correlation, 2)}, for which the scatter of the parameters is widened."
+        f" {number(outcome.correlation, 2)}"
+        f"{', for which the scatter of the parameters is widened' if outcome.correlation > 0.0 else ''}."
     )
     counts = (
         f"{counted(outcome.negative, 'row has', 'rows have')} a resistance below zero and"
