@@ -820,7 +820,7 @@ def _shape_holds(key: Scalar, value: Node, known: Key, collector: Collector) -> 
             value.place,
             f"`{name}` must be a single value",
             found="a mapping" if isinstance(value, Mapping) else "a list",
-            expected=known.meaning,
+            expected=" | ".join(known.choices) or known.meaning,
         )
         return False
     if known.kind == "choice" and value.text not in known.choices:

@@ -76,16 +76,16 @@ def _check(reader: Reader, duty: Duty, fields: Fields) -> None:
     if "shells" in fields and duty.arrangement and duty.arrangement != "shell and tube":
         _refuse(
             reader,
-            duty.place,
+            fields.place_of("shells"),
             f"`shells` has no meaning for {duty.arrangement}",
             "arrangement: shell and tube",
         )
     if "parts" in fields and duty.arrangement and duty.arrangement not in CUT_ARRANGEMENTS:
         _refuse(
             reader,
-            duty.place,
+            fields.place_of("parts"),
             f"{duty.arrangement} cannot be cut into parts that follow each other",
-            " or ".join(CUT_ARRANGEMENTS),
+            f"{' or '.join(CUT_ARRANGEMENTS)}, or no parts",
         )
 
 

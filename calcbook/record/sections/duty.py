@@ -20,7 +20,7 @@ from calcbook.record.numbers import (
     report_unit,
     unit_text,
 )
-from calcbook.record.page import Page
+from calcbook.record.page import Page, counted
 from calcbook.record.sections.criteria import CRITERION_COLUMNS, criterion_row
 from calcbook.record.sections.validity import verdict
 
@@ -29,8 +29,8 @@ HOTTER = 2.0
 
 
 def brief_rows(page: Page) -> list[tuple[str, str, str]]:
-    """The conclusion of the duty: heat, areas, and both margins with their formulas."""
-    rows = []
+    """The conclusion of the duty: arrangement, heat, areas, and both margins with their formulas."""
+    rows = _arrangement(page)
     for name, title, basis in (
         ("duty", "Duty", _duty_basis(page)),
         ("area_installed", "Installed area", f"on the surface {page.basis}"),
@@ -55,6 +55,21 @@ def brief_rows(page: Page) -> list[tuple[str, str, str]]:
     if margin is not None:
         rows.append(("Margin of area over the duty", percent(margin.value), "A_installed/A_service − 1"))
     return rows
+
+
+def _arrangement(page: Page) -> list[tuple[str, str, str]]:
+    """How the streams flow, which decides the mean temperature difference."""
+    duty = page.calculation.duty
+    if duty is None:
+        return []
+    shells = (
+        f", {counted(duty.shells, 'shell', 'shells')} in series"
+        if duty.arrangement == "shell and tube"
+        else ""
+    )
+    return [
+        ("Arrangement", f"{duty.arrangement}{shells}", "stated in `duty:`; it decides the mean difference")
+    ]
 
 
 def _reached_basis(page: Page) -> str:

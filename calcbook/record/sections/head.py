@@ -116,9 +116,22 @@ def _brief_rows(page: Page) -> list[tuple[str, str, str]]:
         if result is not None and page.calculation.duty is None:
             suffix = " (for 1 m of length)" if page.chain.per_metre else ""
             value = in_report_unit(result.value, result.kind, page.calculation.report, PLAIN_DIGITS)
-            rows.append((title + suffix, value, "U·A times the difference of the bulk temperatures"))
+            basis = f"U·A times the difference of the bulk temperatures{_beyond_flow(page, name)}"
+            rows.append((title + suffix, value, basis))
     rows.append(("Controlling term in service", *_controlling(page.base)))
     return rows + _pressure_rows(page)
+
+
+def _beyond_flow(page: Page, name: str) -> str:
+    """Whether a heat flow is more than the whole flow of a saturated stream gives or takes."""
+    beyond = [
+        check.owner
+        for check in page.base.checks
+        if check.id.endswith("/ heat balance / phase change")
+        and name.endswith(check.condition)
+        and check.state == "outside"
+    ]
+    return f"; more than the stated flow of {', '.join(beyond)} gives or takes" if beyond else ""
 
 
 def _pressure_rows(page: Page) -> list[tuple[str, str, str]]:
