@@ -17,7 +17,7 @@ from calcbook.record.page import case_name, counted
 from calcbook.record.software import software_line
 from calcbook.revisions.attribution import Attribution, Part
 from calcbook.revisions.changes import Change
-from calcbook.revisions.comparing import Comparison, ResultEffect, SoftwarePart, Verdict
+from calcbook.revisions.comparing import Comparison, ResultEffect, SoftwarePart, TermEffect, Verdict
 from calcbook.revisions.sides import Side
 
 DIGITS = 6
@@ -175,6 +175,8 @@ def _moved(attribution: Attribution, comparison: Comparison) -> list[Block]:
         _line(scale.value(attribution.now), scale.unit, f"{attribution.result} now, {comparison.new.label}")
     )
     blocks: list[Block] = [Code("\n".join(lines))]
+    if attribution.has_parts and not scale.adds_up(attribution):
+        blocks.append(Paragraph("Each figure is rounded by itself; before that the column adds up."))
     if still:
         blocks.append(Paragraph(f"Moved by nothing: {'; '.join(still)}."))
     return blocks
@@ -254,7 +256,7 @@ def _notes(attribution: Attribution, scale: Scale) -> Iterable[str]:
     interaction = _with(scale.signed(attribution.interaction), scale)
     yield f"Interaction, the difference less the sum of what each does alone: {interaction}."
     solved = counted(attribution.evaluations, "subset of the changes", "subsets of the changes")
-    structures = counted(attribution.structures, "structure", "structures")
+    structures = f"with {counted(attribution.structures, 'list', 'lists')} of terms and methods"
     if attribution.orders:
         yield (
             f"Sampled: {attribution.orders} orders with a fixed seed, every order and its reverse;"
@@ -348,8 +350,8 @@ def _chain(comparison: Comparison) -> list[Block]:
             effect.condition,
             _plain_resistance(effect.was),
             _plain_resistance(effect.now),
-            _resistance(effect.difference),
-            percent(effect.share) if effect.difference else "none",
+            _resistance(effect.difference if _is_moved(effect) else 0.0),
+            percent(effect.share) if _is_moved(effect) else "none",
         )
         for effect in comparison.terms
     )
@@ -512,6 +514,14 @@ class Scale:
         text = fixed(moved, self.places)
         return _plus(text if text.strip("0.") or not moved else number(moved, 2))
 
+    def adds_up(self, attribution: Attribution) -> bool:
+        """Whether the figures of a column, each rounded by itself, add up to the last of them."""
+        parts = [in_unit(part.part, self.difference_source) for part in attribution.parts]
+        rounded = round(self._in(attribution.was), self.places) + sum(
+            round(part, self.places) for part in parts
+        )
+        return abs(rounded - round(self._in(attribution.now), self.places)) < 0.5 * 10.0**-self.places
+
     def size(self, difference: float) -> str:
         """A difference without a sign, to two digits."""
         return number(abs(in_unit(difference, self.difference_source)), 2)
@@ -528,6 +538,11 @@ def _plus(text: str) -> str:
 
 def _signed(value: float) -> str:
     return _plus(number(value))
+
+
+def _is_moved(effect: TermEffect) -> bool:
+    """Whether a resistance moved by more than the rounding of both figures."""
+    return abs(effect.difference) > NOTHING * max(abs(effect.was), abs(effect.now))
 
 
 def _resistance(value: float) -> str:
