@@ -147,8 +147,10 @@ def source_of(solved: Solved) -> Source:
 def _solved(
     calculation: Calculation, library: Library, collector: Collector, for_record: bool = True
 ) -> Solved | None:
-    _check_strangers(library, collector)
     chain = build(calculation, library, collector)
+    if collector:
+        # A card that cannot be read is missing to the calculation that names it.
+        _check_strangers(library, collector)
     if chain is None:
         return None
     if library.house is not None:
@@ -212,7 +214,7 @@ def check_house_cards(chain: Chain, collector: Collector) -> None:
 
 
 def _check_strangers(library: Library, collector: Collector) -> None:
-    """That every file among the book's own cards is one: a card that cannot be read would be missing without a word."""
+    """Tell the files among the book's own cards that are none, beside the faults that they may be the reason of."""
     for path in library.strangers():
         try:
             root = read_file(path, path.name).root

@@ -46,11 +46,20 @@ class Links:
     def __call__(self, text: LinkText) -> Link:
         """The link behind a `from:`. Raises ``Faults``: link-source-unknown, link-revision-unknown,
         issued-altered, link-result-unknown, and the faults of a source that is solved in turn."""
-        file = self._file(text)
+        files = self._files(text.calculation)
         if text.revision:
-            return self._pinned(text, file)
+            return self._pinned(text, files[0] if files else None)
+        if len(files) > 1:
+            raise _fault(
+                "number-in-two-files",
+                text,
+                f"the number {text.calculation} stands in two files",
+                ", ".join(path.name for path in files),
+                "each number once in a book",
+            )
+        file = files[0] if files else None
         if file is None:
-            known = sorted({number for number, _ in self._numbers()})
+            known = sorted({number for number, _, _ in self._numbers()})
             raise _fault(
                 "link-source-unknown",
                 text,
@@ -134,29 +143,22 @@ class Links:
         folder = self.output / number / ISSUED
         return sorted(path.name for path in folder.iterdir() if path.is_dir()) if folder.is_dir() else []
 
-    def _file(self, text: LinkText) -> Path | None:
-        """The calculation file of a number. Raises ``Faults``: number-in-two-files."""
-        files = [path for number, path in self._numbers(text.calculation) if number == text.calculation]
-        if len(files) > 1:
-            raise _fault(
-                "number-in-two-files",
-                text,
-                f"the number {text.calculation} stands in two files",
-                ", ".join(path.name for path in files),
-                "each number once in a book",
-            )
-        return files[0] if files else None
+    def _files(self, number: str) -> list[Path]:
+        """The calculation files of a number; one that cannot be read whole only where there is no other."""
+        found = [(path, is_whole) for name, path, is_whole in self._numbers(number) if name == number]
+        return [path for path, is_whole in found if is_whole] or [path for path, _ in found]
 
-    def _numbers(self, wanted: str = "") -> Iterator[tuple[str, Path]]:
-        """The calculation files of the folder with the number of their title block; those that name ``wanted``."""
+    def _numbers(self, wanted: str = "") -> Iterator[tuple[str, Path, bool]]:
+        """The files of the folder that name ``wanted``: the number of the title block, and whether all can be read."""
         for path in sorted(self.folder.glob("*.yaml")):
             try:
                 text = path.read_text(encoding="utf-8")
-                number = number_of(read_text(text, path.name, Collector()).root) if wanted in text else ""
+                faults = Collector()
+                number = number_of(read_text(text, path.name, faults).root) if wanted in text else ""
             except (OSError, UnicodeDecodeError, Faults):
                 continue
             if number:
-                yield number, path
+                yield number, path, not faults
 
 
 def figure(value: float, unit: str) -> str:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
+from pathlib import Path
 
 from calcbook.book.finding import Found
 from calcbook.book.mistakes import PROCESS_ENDED, mistake_words
@@ -119,6 +120,12 @@ def conclusion(solved: Solved, name: str) -> str:
     return in_report_unit(result.value, result.kind, solved.chain.calculation.report, CONCLUSION_DIGITS)
 
 
+def _file_of(error: OSError) -> str:
+    """Which of both files cannot be written; empty for what stands in their way."""
+    name = Path(str(error.filename or "")).name
+    return name if name in (RECORD, RESULTS) else ""
+
+
 def written(texts: Texts, taken: dict[str, str]) -> Outcome:
     """Write the record and the results of one calculation, unless its number is taken."""
     number = texts.outcome.number
@@ -141,8 +148,8 @@ def written(texts: Texts, taken: dict[str, str]) -> Outcome:
             "output-not-writable",
             place,
             f"the record of {number} cannot be written",
-            found=error.strerror or "",
-            expected="a folder that can be written",
+            found=": ".join(text for text in (error.strerror, _file_of(error)) if text),
+            expected="a folder, and files in it, that can be written",
         )
         return Outcome(texts.found.name, faults=(fault,))
     return texts.outcome

@@ -95,8 +95,8 @@ def _money(reader: Reader, node: Node | None, currency: str) -> Value | None:
     if not isinstance(scalar, Scalar) or _SYMBOL.fullmatch(scalar.text.strip()):
         return reader.value(node)
     text = " ".join(scalar.text.split())
-    found = re.fullmatch(rf"(?P<number>.+?) ?\b{currency}(?P<per>/.+)?", text)
-    per = found["per"] or "" if found is not None else ""
+    found = re.fullmatch(rf"(?P<number>.+?) ?\b{currency}(?P<per> ?/.+)?", text)
+    per = (found["per"] or "").strip() if found is not None else ""
     if found is None or re.search(rf"\b{currency}\b", per):
         reader.collector.add(
             "unit-missing",

@@ -53,6 +53,7 @@ from calcbook.chain.pressure import (
     evaluate_pressure_drops,
     law_of,
     pressure_drop_checks,
+    pressure_items,
     pressure_notes,
 )
 from calcbook.chain.sensitivity import derivatives
@@ -277,6 +278,7 @@ class _Analysis:
                 *self.chain.open_items,
                 *state_items,
                 *jump_items(self.chain, name, solutions),
+                *pressure_items(self.chain, name, solutions),
                 *root_items(self.chain, name, inputs, solutions),
             ),
             closure=self._closure(solutions),
@@ -896,8 +898,11 @@ class _Analysis:
                 )
                 return None
             given = self.chain.calculation.givens.get(value.symbol)
-            if given is not None and self._read_limit(given.value.quantity, kind, value.place) is None:
-                return None
+            if given is not None:
+                if self._read_limit(given.value.quantity, kind, value.place) is None:
+                    return None
+                if kind.name == "ratio" and not given.value.is_share(criterion.result, self.collector):
+                    return None
             return solution.figure(name)
         assert value.quantity is not None, "a limit is a symbol or a quantity"
         if kind.name == "ratio" and not value.is_share(criterion.result, self.collector):

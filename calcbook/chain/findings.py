@@ -17,6 +17,7 @@ from calcbook.chain.outcome import CheckResult
 from calcbook.chain.roots import other_heat_flows
 from calcbook.chain.solve import Solution, chosen
 from calcbook.chain.types import (
+    ABOVE_SITE,
     ABSENT,
     CONDITIONS,
     SERVICE,
@@ -135,6 +136,8 @@ def _check_derived(chain: Chain, values: Mapping[str, Any], collector: Collector
         kind, value = chain.derived_kinds.get(symbol), float(values[f"derived/{symbol}"])
         if kind is not None and kind.dimension == kelvin:
             _check_scale(item, kind, moves[symbol], collector, case)
+        if kind is not None and kind.reading == "absolute":
+            _check_pressure(chain, item, values, collector, case)
         if cannot_be[symbol]:
             what = f"the {f'{kind.name} ' if kind is not None else ''}{symbol} that is derived here"
             must = must_be(kind) if kind is not None else ""
@@ -237,6 +240,30 @@ def _check_scale(item: Derived, kind: QuantityKind, moves: float, collector: Col
             else f"{what} moves by {whole} K where the temperatures it is taken from move by 1 K",
             found=item.relation.text.strip(),
             expected="a temperature, which moves by 1 K" if wanted else "a difference, which does not move",
+        )
+
+
+def _check_pressure(
+    chain: Chain, item: Derived, values: Mapping[str, Any], collector: Collector, case: str
+) -> None:
+    """That an absolute pressure is no difference of gauge pressures: it moves with the pressure of the site."""
+    above_site = [step for step in chain.steps if step.id.endswith(ABOVE_SITE)]
+    taken = {f"given/{symbol}{ABOVE_SITE}" for symbol in item.relation.symbols}
+    if len(taken & {step.id for step in above_site}) < 2:
+        return
+    moved = dict(values)
+    for site in {step.inputs["p_site"] for step in above_site}:
+        moved[site] = np.asarray(moved[site]) + 1.0
+    run([*above_site, *(step for step in chain.steps if step.id.startswith("derived/"))], moved)
+    name = f"derived/{item.symbol}"
+    if abs(float(moved[name]) - float(values[name])) < SAME_MOVE * abs(float(values[name])):
+        collector.add(
+            "derived-not-possible",
+            item.place,
+            f"{f'case {case}: ' if case else ''}the pressure {item.symbol} that is derived here stays where the"
+            " pressure of the site moves, as a difference of pressures does",
+            found=item.relation.text.strip(),
+            expected="a pressure less a drop, which is stated in bar and not in barg",
         )
 
 

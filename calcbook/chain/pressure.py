@@ -23,6 +23,7 @@ from calcbook.chain.types import (
     ChainStep,
     ChoiceRow,
     Group,
+    OpenItem,
     PressureDrop,
 )
 from calcbook.faults import Collector, Fault, Faults
@@ -273,6 +274,27 @@ def pressure_drop_checks(chain: Chain, solution: Solution) -> list[ChainCheck]:
         law = law_of(drop, solution)
         checks += [*(law.checks if law is not None else ()), *drop.total.checks]
     return checks
+
+
+def pressure_items(chain: Chain, case: str, solutions: Mapping[str, Solution]) -> list[OpenItem]:
+    """An open item for each stream that would lose more pressure than it has."""
+    found: dict[str, OpenItem] = {}
+    for _, branch, drop in drops(chain):
+        state = chain.streams.get(branch.stream)
+        for condition, solution in solutions.items():
+            lost = solution.values.get(drop.total.coefficient)
+            if state is None or not state.pressure or lost is None:
+                continue
+            has, loses = solution.number(state.pressure), solution.number(drop.total.coefficient)
+            if loses >= has:
+                name = f"{branch.name}/pressure lost" + (f"/{case}" if case else "")
+                where = f"Case {case}: stream" if case else "Stream"
+                text = (
+                    f"{where} {state.name} would lose {loses / 1e5:.4g} bar of its {has / 1e5:.4g} bar (absolute),"
+                    f" {condition}."
+                )
+                found[name] = OpenItem(name, "state", text)
+    return list(found.values())
 
 
 def acting_methods(drop: PressureDrop, solution: Solution) -> tuple[Method, ...]:

@@ -9,7 +9,7 @@ from dataclasses import dataclass, field
 from calcbook.calcfile import Calculation
 from calcbook.calcfile.calculation import Given, Value
 from calcbook.calcfile.empty import is_empty
-from calcbook.chain.types import ChainStep, Input, OpenItem, RunnerAssumption
+from calcbook.chain.types import ABOVE_SITE, ChainStep, Input, OpenItem, RunnerAssumption
 from calcbook.faults import Collector, Place, nearest_names, shown
 from calcbook.formulas import Relation, RelationFault, dimension
 from calcbook.library import vocabulary
@@ -280,7 +280,7 @@ class Scope:
 
         site = self.site_pressure()
         return self.relation_step(
-            f"{name}/absolute",
+            f"{name}{ABOVE_SITE}",
             "p",
             f"absolute pressure of {what}",
             owner,

@@ -73,6 +73,8 @@ class SpecifiedFouling:
         """The specification lies where it can: a fault of the file otherwise."""
         figures = {SYMBOLS[self.specified.kind]: self._figure()}
         that = LIMITS[self.specified.kind]
+        self.is_share()
+        self._shares_keep_their_sum()
         found = [self._stop("specified fouling", that, figures, "a deposit adds resistance, or none")]
         shares = {
             f"x_{number}": self.scope.value(value, "ratio", OWNER, f"share of {name}")
@@ -85,6 +87,22 @@ class SpecifiedFouling:
             found.append(self._stop("share", f"{least} >= 0", shares, "a share is a part, or nothing"))
         return tuple(found)
 
+    def _shares_keep_their_sum(self) -> None:
+        """That a share with a tolerance leaves another one to be derived: they would make no whole otherwise."""
+        calculation = self.scope.calculation
+        symbols = [value.symbol for value in self.specified.split.values()]
+        moving = [
+            name for name in symbols if name in calculation.givens and calculation.givens[name].tolerance
+        ]
+        if moving and not any(name in calculation.derived for name in symbols):
+            self.scope.collector.add(
+                "split-unreadable",
+                calculation.givens[moving[0]].place,
+                "a share with a tolerance leaves shares that make no whole",
+                found=moving[0],
+                expected=f"the other share derived, as 1 - {moving[0]}",
+            )
+
     def _stop(self, name: str, that: str, figures: dict[str, str], because: str) -> ChainCheck:
         limit = Limit(
             name,
@@ -96,6 +114,12 @@ class SpecifiedFouling:
             self.specified.place,
         )
         return ChainCheck(f"{OWNER} / {name}", OWNER, OWNER, limit, figures)
+
+    def is_share(self) -> bool:
+        """Whether the figure that the file specifies is a share; a given is looked at where it stands."""
+        value = self.specified.value
+        given = self.scope.calculation.givens.get(value.symbol) if value.symbol else None
+        return given is None or given.value.is_share(self.specified.kind, self.scope.collector)
 
     def _figure(self) -> str:
         return self.scope.value(self.specified.value, "ratio", OWNER, self.specified.kind)

@@ -25,6 +25,8 @@ CONDITIONS = (CLEAN, SERVICE)
 # The figure that is 1 in service and 0 clean: it narrows a bore by a deposit.
 # How the constant of a figure ends that is taken for want of a stated one.
 ABSENT = " absent"
+# How the step ends that gives the absolute pressure of a gauge one.
+ABOVE_SITE = "/absolute"
 SERVICE_FLAG = "condition/service"
 
 

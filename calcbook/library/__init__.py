@@ -104,7 +104,9 @@ class Library:
     def _first_keys(self) -> dict[Path, str]:
         if self._house is None:
             files = self.house.glob("*.yaml") if self.house is not None else ()
-            self._house = {path: _first_key(path) for path in sorted(files)}
+            # A name with a dot in front is a lock or a copy that a system keeps for itself.
+            plain = sorted(path for path in files if not path.name.startswith(".") and not path.is_dir())
+            self._house = {path: _first_key(path) for path in plain}
         return self._house
 
     def _path(self, kind: str, name: str) -> tuple[Path, bool]:
@@ -146,11 +148,13 @@ def _is_plain(name: str) -> bool:
 def _first_key(path: Path) -> str:
     """The word before the first colon of a card's first line that is no comment."""
     try:
-        lines = path.read_text(encoding="utf-8").splitlines()
+        lines = path.read_text(encoding="utf-8-sig").splitlines()
     except (OSError, UnicodeDecodeError):
         return ""
-    first = next((line for line in lines if line.strip() and not line.lstrip().startswith(("#", "---"))), "")
-    return first.partition(":")[0].strip()
+    first = next(
+        (line for line in lines if line.strip() and not line.lstrip().startswith(("#", "---", "%"))), ""
+    )
+    return first.partition(":")[0].strip(" {\"'")
 
 
 _built_in = Library()

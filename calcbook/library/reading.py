@@ -40,8 +40,8 @@ from calcbook.library.cards import (
 )
 from calcbook.quantities import QuantityFault, QuantityKind, kind_from_entry, read_any, read_quantity
 
-# A stated share in per cent, and the largest part of a figure by which a check point may be missed.
-SHARE = re.compile(r"(?<![-−0-9.])([0-9]+(?:\.[0-9]+)?) %")
+# A figure of an accuracy, and the largest part of a figure by which a check point may be missed.
+SHARE = re.compile(r"(?<![-−0-9.])[0-9]+(?:\.[0-9]+)?")
 LOOSEST = 0.5
 _VOCABULARY = Path(__file__).with_name("vocabulary.yaml")
 _kinds: dict[str, QuantityKind] = {}
@@ -530,8 +530,8 @@ class _Reader:
         if node is None:
             return None
         fields = self.record(node, described.ACCURACY)
-        share = SHARE.search(fields.text("within"))
-        if "within" in fields and (share is None or float(share[1]) == 0.0):
+        figures = [float(found) for found in SHARE.findall(fields.text("within"))]
+        if "within" in fields and not any(figure > 0.0 for figure in figures):
             self.fault(
                 fields.place_of("within"),
                 "number-unreadable",

@@ -124,6 +124,12 @@ def test_a_link_to_a_number_in_two_files_is_a_fault(book: Path) -> None:
     assert (fault.code, fault.found) == ("number-in-two-files", "again.yaml, source.yaml")
 
 
+def test_a_draft_that_cannot_be_read_is_no_second_source(book: Path) -> None:
+    before = solve_file(book / "fed.yaml").base.inputs["given/T_hot"]
+    (book / "draft.yaml").write_text("calculation:\n  number: S-1\n  title: [x\n", encoding="utf-8")
+    assert solve_file(book / "fed.yaml").base.inputs["given/T_hot"] == before
+
+
 def test_calculations_that_take_from_each_other_in_a_long_row_are_told(tmp_path: Path) -> None:
     count = 40
     for number in range(count):

@@ -133,16 +133,34 @@ def test_a_changed_figure_is_found_by_every_run(book: Path) -> None:
         (b"- method\n", "key-unknown", 1),
     ],
 )
-def test_a_file_among_the_cards_that_is_none_is_told(book: Path, text: bytes, code: str, line: int) -> None:
-    """Also where no calculation uses it: a card that cannot be read would be missing without a word."""
-    (book / "cards" / "another.yaml").write_bytes(text)
-    (fault,) = faults(book).faults
-    assert (fault.code, fault.place.file, fault.place.line) == (code, "another.yaml", line)
+def test_a_file_that_is_no_card_is_told_where_the_card_is_missed(
+    book: Path, text: bytes, code: str, line: int
+) -> None:
+    """The calculation that names it is told why it is not there; one that does not is not held up."""
+    (book / "cards" / f"{CARD}.yaml").write_bytes(text)
+    found = {fault.code: fault.place for fault in faults(book).faults}
+    assert (found[code].file, found[code].line) == (f"{CARD}.yaml", line)
+    assert any(code.endswith("-unknown") for code in found)
+    shutil.copy(CALCS / "fw-601.yaml", book)
+    shutil.copy(CALCS / "book.yaml", book)
+    library_of.cache_clear()
+    assert solve_file(book / "fw-601.yaml", for_record=False).base.results["U_service"].value > 0
 
 
-def test_a_card_may_begin_with_a_mark_of_its_document(book: Path) -> None:
+@pytest.mark.parametrize(
+    ("name", "text"),
+    [(".#card.yaml", b"root@host"), ("._card.yaml", b"\x00\x05"), ("later.yaml", b"# nothing yet\n")],
+)
+def test_what_systems_keep_beside_cards_holds_nothing_up(book: Path, name: str, text: bytes) -> None:
+    (book / "cards" / name).write_bytes(text)
+    (book / "cards" / "folder.yaml").mkdir()
+    assert solve_file(book / "he-951.yaml").base.results["U_service"].value > 900
+
+
+@pytest.mark.parametrize("start", ["---\n", "\ufeff", "%YAML 1.1\n---\n"])
+def test_a_card_may_begin_as_any_yaml_file(book: Path, start: str) -> None:
     path = book / "cards" / f"{CARD}.yaml"
-    path.write_text(f"---\n{path.read_text(encoding='utf-8')}", encoding="utf-8")
+    path.write_text(f"{start}{path.read_text(encoding='utf-8')}", encoding="utf-8")
     assert solve_file(book / "he-951.yaml").base.results["U_service"].value > 900
 
 

@@ -131,3 +131,14 @@ def test_an_amount_of_money_is_a_number_and_its_currency(tmp_path: Path, amount:
     with pytest.raises(Faults) as caught:
         solved(tmp_path, COOLER + money(9000, 28).replace("9000 EUR", amount))
     assert {fault.code for fault in caught.value.faults} <= {"unit-missing", "unit-unknown"}
+
+
+@pytest.mark.parametrize("price", ["28 EUR / MWh", "28 EUR /MWh"])
+def test_a_price_may_have_blanks_about_its_solidus(tmp_path: Path, price: str) -> None:
+    body = COOLER + money(9000, 28)
+    assert body.count("28 EUR/MWh") == 1
+    found = [
+        solved(tmp_path, text).base.results["cleaning_interval"].value
+        for text in (body, body.replace("28 EUR/MWh", price))
+    ]
+    assert found[0] == found[1]

@@ -263,3 +263,15 @@ def test_a_given_whose_tolerance_reaches_another_verdict_is_named_beside_it() ->
         "hr-821", "| criterion 2 | yearly cleaning"
     )
     assert "alone turns it" not in line_with("hr-821", "| criterion 2 | base")
+
+
+def test_a_stream_that_would_lose_more_pressure_than_it_has_is_an_open_item(tmp_path: Path) -> None:
+    text = (CALCS / "wc-105.yaml").read_text(encoding="utf-8")
+    assert text.count("15.75 mm") == text.count("19.05 mm") == 1
+    path = tmp_path / "wc-105.yaml"
+    path.write_text(text.replace("15.75 mm", "4 mm").replace("19.05 mm", "6 mm"), encoding="utf-8")
+    items = {item.id: item.text for item in solve_file(path, for_record=False).open_items}
+    assert re.fullmatch(
+        r"Stream hot would lose [0-9.]+ bar of its 4 bar \(absolute\), (clean|service)\.",
+        items["tube-side film/pressure lost"],
+    )
