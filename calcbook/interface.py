@@ -162,7 +162,7 @@ def _solved(
     solved = _surveyed(_assessed(_followed(rated(solved)), collector), collector)
     if solved is None or collector:
         return None
-    solved = judged_later(solved, collector)
+    solved = _judged_by_probability(judged_later(solved, collector), collector)
     if collector:
         return None
     if not for_record:
@@ -189,6 +189,15 @@ def _assessed(solved: Solved, collector: Collector) -> Solved:
     from calcbook.uncertainty.assessing import with_uncertainty
 
     return with_uncertainty(solved, collector)
+
+
+def _judged_by_probability(solved: Solved, collector: Collector) -> Solved:
+    """The solved calculation with the criteria decided that ask for a probability; it was sampled then."""
+    if solved.uncertainty is None:
+        return solved
+    from calcbook.uncertainty.assessing import judged_by_probability
+
+    return judged_by_probability(solved, collector)
 
 
 def _surveyed(solved: Solved, collector: Collector) -> Solved | None:

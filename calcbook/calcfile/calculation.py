@@ -262,7 +262,10 @@ class Term:
 
 
 class Criterion(NamedTuple):
-    """An acceptance criterion: a result, an operator, and a quantity or given."""
+    """An acceptance criterion: a result, an operator, and a quantity or given.
+
+    ``probability`` is the share of the samples in which it must hold, NaN where the stated values decide.
+    """
 
     text: str
     result: str
@@ -270,6 +273,7 @@ class Criterion(NamedTuple):
     limit: Value
     source: str
     place: Place
+    probability: float = math.nan
 
 
 class Acceptance(NamedTuple):

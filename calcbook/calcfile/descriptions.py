@@ -486,6 +486,12 @@ CRITERION = Description(
             "that", "<result> <op> <quantity or given>", required=True, example="U_service >= 1000 W/(m^2 K)"
         ),
         Key("source", "document the criterion comes from"),
+        Key(
+            "probability",
+            "how sure it must be over the samples of `uncertainty:`, a share such as 95 %",
+            "name",
+            example="95 %",
+        ),
     ),
 )
 REPORT = Description(

@@ -47,6 +47,7 @@ from calcbook.documents import Mapping as MappingNode
 from calcbook.faults import Collector, Faults, Place, nearest_names, shown
 from calcbook.formulas import Relation, RelationFault, parse_expression
 from calcbook.quantities import (
+    DIMENSIONLESS,
     Quantity,
     QuantityFault,
     QuantityKind,
@@ -1208,8 +1209,32 @@ class Reader:
                 continue
             criterion = self.criterion(scalar, fields.text("source"))
             if criterion is not None:
-                result.append(criterion)
+                result.append(criterion._replace(probability=self.probability(fields)))
         return tuple(result)
+
+    def probability(self, fields: Fields) -> float:
+        """The share of the samples in which a criterion must hold; NaN where none is asked for."""
+        scalar = fields.scalar("probability")
+        quantity = self.quantity(scalar) if scalar is not None else None
+        if scalar is None or quantity is None:
+            return math.nan
+        if quantity.dimension != DIMENSIONLESS or not 0.0 < quantity.value < 1.0:
+            self.collector.add(
+                "number-unreadable",
+                scalar.place,
+                "this is no probability that a criterion could hold with",
+                found=shown(scalar.text),
+                expected="a share above 0 and below 100 %, such as 95 %",
+            )
+            return math.nan
+        if "uncertainty" not in self.fields:
+            self.collector.add(
+                "key-missing",
+                scalar.place,
+                "a probability is counted over samples",
+                expected="uncertainty: … in the file, which draws them",
+            )
+        return quantity.value
 
     def criterion(self, scalar: Scalar, source: str) -> Criterion | None:
         match = re.fullmatch(r"\s*(.+?)\s*(>=|<=|>|<)\s*([^=<>\s].*?)\s*", scalar.text, re.DOTALL)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import NamedTuple
@@ -46,6 +47,8 @@ class CriterionResult(NamedTuple):
     """An acceptance criterion: met or not met, with its margin (value less limit, in the direction that is good).
 
     ``words`` stand in place of a value that is not there and yet settles the criterion; value and margin are NaN then.
+    ``required`` is the probability that is asked for and ``reached`` the share of the samples in which it holds, NaN
+    where none is asked for; ``met`` is decided by them then, and ``stated_met`` by the stated values.
     """
 
     id: str
@@ -58,6 +61,14 @@ class CriterionResult(NamedTuple):
     kind: QuantityKind
     source: str
     words: str = ""
+    required: float = math.nan
+    reached: float = math.nan
+    stated_met: bool | None = None
+
+    @property
+    def is_met_as_stated(self) -> bool:
+        """Whether the stated values meet it."""
+        return self.met if self.stated_met is None else self.stated_met
 
 
 class Result(NamedTuple):

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import math
 
 from calcbook.chain.flips_outcome import Flip
 from calcbook.chain.growth_outcome import OverTime
@@ -166,6 +167,11 @@ def _criterion(item: CriterionResult) -> Data:
         "margin": rounded(item.margin),
         "source": item.source,
         **({"words": item.words} if item.words else {}),
+        **(
+            {"probability_asked": rounded(item.required), "probability": rounded(item.reached)}
+            if not math.isnan(item.required)
+            else {}
+        ),
     }
 
 

@@ -8,12 +8,13 @@ from dataclasses import replace
 
 import numpy as np
 
+from calcbook.calcfile.calculation import Criterion
 from calcbook.calcfile.uncertainty import USUAL_COVERAGE, UncertaintyText
 from calcbook.chain.analysis import is_found_later
 from calcbook.chain.completing import completed
 from calcbook.chain.ends import EndState, closed_ends, end_slopes, end_states
 from calcbook.chain.factors import with_factors
-from calcbook.chain.outcome import CaseOutcome, Result, Solved
+from calcbook.chain.outcome import CaseOutcome, CriterionResult, Result, Solved
 from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.types import Chain, Layer
 from calcbook.chain.uncertainty_outcome import (
@@ -71,6 +72,46 @@ def with_uncertainty(solved: Solved, collector: Collector) -> Solved:
     elsewhere = _elsewhere(solved, case, chain, correlations)
     found = _Assessment(case, chain, (*figures, *factors), left_out, results, correlations, asked)
     return replace(solved, uncertainty=found.uncertainty()._replace(elsewhere=elsewhere))
+
+
+def judged_by_probability(solved: Solved, collector: Collector) -> Solved:
+    """A solved calculation whose criteria with a probability are judged by the samples of the assessed case.
+
+    Code: result-not-propagated, for a criterion that the samples cannot show.
+    """
+    acceptance = solved.chain.calculation.acceptance
+    found = solved.uncertainty
+    if found is None or found.sampling is None or all(math.isnan(item.probability) for item in acceptance):
+        return solved
+    chances = {chance.id: chance for chance in found.sampling.chances}
+    cases = []
+    for case in solved.cases:
+        criteria = []
+        for row in case.criteria:
+            asked = solved.chain.calculation.criterion(row.id)
+            if not math.isnan(asked.probability):
+                row = row._replace(required=asked.probability)
+                if case.name == found.case:
+                    row = _by_chance(row, asked, chances.get(row.id), collector)
+            criteria.append(row)
+        cases.append(replace(case, criteria=tuple(criteria)))
+    return replace(solved, cases=tuple(cases))
+
+
+def _by_chance(
+    row: CriterionResult, asked: Criterion, chance: Chance | None, collector: Collector
+) -> CriterionResult:
+    if chance is None:
+        collector.add(
+            "result-not-propagated",
+            asked.place,
+            f"the samples cannot show how often `{shown(asked.result)}` meets its limit",
+            found=shown(asked.text),
+            expected="a criterion without a probability, or on a result that can be sampled",
+        )
+        return row
+    reached = chance.probability
+    return row._replace(met=reached >= row.required, reached=reached, stated_met=row.met)
 
 
 def _elsewhere(

@@ -8,6 +8,7 @@ from pathlib import Path
 
 import pytest
 
+from calcbook.faults import Faults
 from calcbook.interface import record_text, solve_file
 
 CALCS = Path(__file__).resolve().parents[2] / "calcs"
@@ -22,12 +23,69 @@ def line_with(name: str, start: str) -> str:
     return next(line for line in lines(name) if line.startswith(start))
 
 
-def test_a_criterion_of_samples_says_with_which_probability_it_holds() -> None:
-    sampled = next(line for line in lines("hc-985") if line.startswith("Probability that it holds"))
+def with_criterion(folder: Path, criterion: str, *changes: tuple[str, str]) -> Path:
+    """HC-985 with another criterion in the place of its own."""
+    text = (CALCS / "hc-985.yaml").read_text(encoding="utf-8")
+    for old, new in (
+        ("that: area_margin >= 0, source: procedure LM-PR-21, probability: 95 %", criterion),
+        *changes,
+    ):
+        assert text.count(old) == 1
+        text = text.replace(old, new)
+    path = folder / "hc-985.yaml"
+    path.write_text(text, encoding="utf-8")
+    return path
+
+
+def test_a_criterion_of_samples_says_with_which_probability_it_holds(tmp_path: Path) -> None:
+    path = with_criterion(tmp_path, "that: area_margin >= 0, source: test")
+    found = record_text(solve_file(path)).splitlines()
+    sampled = next(line for line in found if line.startswith("Probability that it holds"))
     probability = sampled.rpartition(": ")[2].rstrip(".")
-    assert f"criterion met at the stated values; holds with {probability} |" in line_with(
-        "hc-985", "| criterion 1"
-    )
+    row = next(line for line in found if line.startswith("| criterion 1"))
+    assert f"criterion met at the stated values; holds with {probability} |" in row
+
+
+@pytest.mark.parametrize(("asked", "met"), [("80 %", True), ("0.95", False)])
+def test_a_criterion_that_asks_for_a_probability_is_decided_by_it(
+    tmp_path: Path, asked: str, met: bool
+) -> None:
+    """The margin is above zero in 86 % of the samples, as the record of HC-985 gives it."""
+    path = with_criterion(tmp_path, f"that: area_margin >= 0, source: test, probability: {asked}")
+    solved = solve_file(path)
+    (criterion,) = solved.base.criteria
+    assert (criterion.met, criterion.is_met_as_stated) == (met, True)
+    assert criterion.reached == pytest.approx(0.86, abs=0.01)
+    text = record_text(solved)
+    assert f"{int(met)} of 1 criterion met" in text
+    assert ("- criterion 1 is not met in case base" in text) is not met
+    assert "is searched by its verdict at the stated values" in text
+
+
+@pytest.mark.parametrize(
+    ("criterion", "code"),
+    [
+        ("that: area_margin >= 0, source: test, probability: 100 %", "number-unreadable"),
+        ("that: area_margin >= 0, source: test, probability: 95", "number-unreadable"),
+        ("that: area_margin >= 0, source: test, probability: 5 K", "number-unreadable"),
+        ("that: dp condensate_service <= 9 kPa, source: test, probability: 95 %", "result-not-propagated"),
+    ],
+)
+def test_a_probability_that_cannot_be_is_a_fault(tmp_path: Path, criterion: str, code: str) -> None:
+    with pytest.raises(Faults) as caught:
+        solve_file(with_criterion(tmp_path, criterion), for_record=False)
+    assert [fault.code for fault in caught.value.faults] == [code]
+
+
+def test_a_probability_wants_samples(tmp_path: Path) -> None:
+    text = (CALCS / "hc-985.yaml").read_text(encoding="utf-8")
+    start, end = text.index("\nuncertainty:"), text.index("\nreport:")
+    path = tmp_path / "hc-985.yaml"
+    path.write_text(text[:start] + text[end:], encoding="utf-8")
+    with pytest.raises(Faults) as caught:
+        solve_file(path, for_record=False)
+    (fault,) = caught.value.faults
+    assert (fault.code, fault.expected) == ("key-missing", "uncertainty: … in the file, which draws them")
 
 
 def test_a_criterion_inside_its_uncertainty_is_no_plain_verdict() -> None:

@@ -56,6 +56,10 @@ def _alone(page: Page) -> list[Block]:
             "A flow or an end of the duty changed alone opens the heat balance: the duty is the mean of both streams,"
             " and the limits of its closure stand among the limits below."
         )
+    if any(not math.isnan(item.probability) for item in page.calculation.acceptance):
+        notes.append(
+            "A criterion that asks for a probability is searched by its verdict at the stated values."
+        )
     later = [item.text for item in page.calculation.acceptance if is_found_later(item.result)]
     if later:
         notes.append(f"What is found once from the solved calculation is not searched: {'; '.join(later)}.")

@@ -365,7 +365,7 @@ def _undecided(page: Page) -> list[str]:
         sign = 1.0 if ">" in item.that else -1.0
         for row in page.solved.cross:
             met = (row.overall - item.limit) * sign >= 0.0
-            if not row.left_out and met != item.met:
+            if not row.left_out and met != item.is_met_as_stated:
                 lines.append(
                     f"{item.id} ({item.that}) depends on the method: with {row.method} on {row.term}, within its"
                     f" range here, it is {'met' if met else 'not met'}."

@@ -68,7 +68,15 @@ def certainty_words(found: Uncertainty | None, item: CriterionResult) -> str:
             if chance.id == item.id:
                 answered = found.sampling.trials - found.sampling.unanswered
                 lacking = _lacking(missing_terms(found), ", without")
+                if not math.isnan(item.required):
+                    as_stated = "met" if item.is_met_as_stated else "not met"
+                    return (
+                        f": it holds with {_chance(chance.probability, answered)}{lacking}, and"
+                        f" {percent(item.required)} is asked for; {as_stated}{AT_STATED}"
+                    )
                 return f"{AT_STATED}; holds with {_chance(chance.probability, answered)}{lacking}"
+    if not math.isnan(item.required):
+        return f"{AT_STATED}; the probability that is asked for is worked out in {_case(found)} alone"
     known = _expanded(found, item)
     if known is None:
         return f"{AT_STATED}; its uncertainty is not worked out"
