@@ -285,7 +285,10 @@ class _Game:
     # -- values -------------------------------------------------------------------------------------
 
     def _find_overrides(self) -> None:
-        """Blocks that only move inputs of the old chain, with the inputs they move."""
+        """Blocks that only move inputs of the old chain, with the inputs they move.
+
+        One that moves none of them may still be what another change needs: it is made with the structure.
+        """
         before = self.mixer.chain(frozenset())
         assert before is not None
         fresh = [block for block in self.blocks if block not in self.moved]
@@ -295,7 +298,7 @@ class _Game:
         )
         self.moved |= {block: moved if block in agreeing else None for block, moved in found.items()}
         moves = ((number, self.moved[block]) for number, block in enumerate(self.blocks))
-        self.overrides = {number: moved for number, moved in moves if moved is not None}
+        self.overrides = {number: moved for number, moved in moves if moved}
 
     def _moved_by(self, before: Chain, block: tuple[int, ...]) -> dict[str, float] | None:
         """The inputs that a block moves; None where it is known to do more than that."""

@@ -400,3 +400,23 @@ def test_any_result_can_be_attributed() -> None:
             now - was, abs=1e-9 * scale
         )
         assert abs(attribution.rest) <= 1e-9 * scale
+
+
+def test_a_change_that_moves_nothing_is_joined_only_with_what_needs_it() -> None:
+    """Parts belong to counterflow: with them the arrangement changes; the allowance and the tubes stand apart."""
+    old = example("wc-105")
+    new = old.replace("arrangement: counterflow", "arrangement: shell and tube").replace("  parts: 4\n", "")
+    new = new.replace("value: 0.00035 m^2 K/W", "value: 0.00045 m^2 K/W").replace(
+        "N:      {value: 62", "N:      {value: 59"
+    )
+    comparison = compare(example_side(old), example_side(new))
+    (attribution,) = comparison.attributions
+    blocks = {frozenset(part.changes) for part in attribution.parts}
+    assert blocks == {
+        frozenset({"givens/N"}),
+        frozenset({"givens/R_fo"}),
+        frozenset({"duty/arrangement", "duty/parts"}),
+    }
+    moved = {next(iter(sorted(part.changes))): part.part for part in attribution.parts}
+    # Stated films and ends: how the streams flow moves the area that is needed, and no coefficient.
+    assert moved["duty/arrangement"] == pytest.approx(0.0, abs=1e-9)
