@@ -140,6 +140,8 @@ def judged_later(solved: Solved, collector: Collector) -> Solved:
 def keeps_what_is_found_later(chain: Chain, case: str) -> bool:
     """Whether a case restates nothing that moves what is found of the base case over the time in service."""
     times = {growing.time for growing in chain.growing}
+    # A figure that only a criterion takes moves nothing that is found.
+    times |= {f"given/{symbol}" for symbol, places in chain.used_in.items() if not places}
     restated = {f"given/{symbol}" for symbol in chain.calculation.cases.get(case, {})}
     typed = {symbol for symbol, places in chain.used_in.items() if len(places) > 1}
     return restated <= times - {f"given/{symbol}" for symbol in typed}

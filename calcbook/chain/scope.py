@@ -231,7 +231,7 @@ class Scope:
         name = f"{owner}/{key}"
         if name not in self.inputs:
             figure = as_kind(value.quantity, kind).value
-            title = f"{key} of {owner}"
+            title = f"{key.removeprefix('with ')} {'stated for' if key.startswith('with ') else 'of'} {owner}"
             self.inputs[name] = Input(
                 name, kind.symbol, title, kind, figure, value.text, value.source, value.place, False
             )

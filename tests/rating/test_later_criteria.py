@@ -142,3 +142,12 @@ def test_a_price_may_have_blanks_about_its_solidus(tmp_path: Path, price: str) -
         for text in (body, body.replace("28 EUR/MWh", price))
     ]
     assert found[0] == found[1]
+
+
+def test_a_case_that_restates_a_limit_alone_is_judged(tmp_path: Path, days: float) -> None:
+    body = (COOLER + TABLE).replace(
+        "givens:\n", "givens:\n  t_lim: {value: 1 days, is: limit, source: test}\n", 1
+    )
+    cases = f"cases:\n  stricter:\n    t_lim: {{value: {math.ceil(days) + 1} days, source: test}}\n"
+    result = solved(tmp_path, body + stated(f"{LOST} >= t_lim") + cases)
+    assert [case.criteria[0].met for case in result.cases] == [True, False]

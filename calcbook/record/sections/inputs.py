@@ -123,7 +123,7 @@ def stated_choices(page: Page) -> Iterator[tuple[str, Value]]:
     for term in page.calculation.every_term:
         for key, value in term.with_values.items():
             if value.symbol not in figures and f"{term.name}/with {key}" not in page.chain.inputs:
-                yield f"with {key} of {term.name}", value
+                yield f"{key} stated for {term.name}", value
 
 
 def si_text(item: Input) -> str:
