@@ -81,7 +81,9 @@ def test_the_stated_impeller_is_that_of_the_older_method(tmp_path: Path, impelle
 
 def test_a_stated_choice_stands_among_the_givens_and_in_the_row_of_its_table() -> None:
     record = record_text(solve_file(EXAMPLE))
-    assert "| impeller stated for mixture film | pitched_turbine | a choice | drawing LM-JV-971-04 |" in record
+    assert (
+        "| impeller stated for mixture film | pitched_turbine | a choice | drawing LM-JV-971-04 |" in record
+    )
     assert "| drawing LM-JV-971-04 | D_i; impeller stated for mixture film |" in record
     assert "table wall: row for impeller = pitched_turbine, Re = " in record
 
