@@ -370,6 +370,13 @@ def _undecided(page: Page) -> list[str]:
                     f"{item.id} ({item.that}) depends on the method: with {row.method} on {row.term}, within its"
                     f" range here, it is {'met' if met else 'not met'}."
                 )
+    governing = page.solved.governing
+    others = any(not row.left_out for row in page.solved.cross)
+    if others and governing and governing != case_name("") and page.calculation.acceptance:
+        lines.append(
+            f"Other methods are held beside the base case alone, and case {governing} governs: whether its verdicts"
+            " depend on the method is not shown."
+        )
     return lines
 
 
