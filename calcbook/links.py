@@ -44,8 +44,8 @@ class Links:
         self.solve = solve
 
     def __call__(self, text: LinkText) -> Link:
-        """The link behind a `from:`. Raises ``Faults``: link-source-unknown, link-revision-unknown,
-        issued-altered, link-result-unknown, and the faults of a source that is solved in turn."""
+        """The link behind a `from:`. Raises ``Faults``: link-source-unknown, number-in-two-files,
+        link-revision-unknown, issued-altered, link-result-unknown, and the faults of a source that is solved in turn."""
         files = self._files(text.calculation)
         if text.revision:
             return self._pinned(text, files[0] if files else None)

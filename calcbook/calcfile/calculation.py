@@ -39,17 +39,14 @@ class Value:
     def is_literal(self) -> bool:
         return self.quantity is not None
 
-    def is_share(self, name: str, collector: Collector, place: Place | None = None) -> bool:
-        """Whether a figure for a share is no larger than shares are; else the fault, number-out-of-proportion.
-
-        ``place`` is where the share is wanted, where that is not where the figure stands.
-        """
+    def is_share(self, name: str, collector: Collector) -> bool:
+        """Whether a figure for a share is no larger than shares are; else the fault, number-out-of-proportion."""
         quantity = self.quantity
         if quantity is None or quantity.unit_text or quantity.value <= LARGEST_SHARE:
             return True
         collector.add(
             "number-out-of-proportion",
-            place or self.place,
+            self.place,
             f"`{name}` is a share: {self.text} would be {100.0 * quantity.value:g} %",
             found=self.text,
             expected="a share of one, or per cent",

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import itertools
 import math
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -76,6 +76,7 @@ from calcbook.chain.types import (
 from calcbook.faults import Collector, Place, nearest_names, shown
 from calcbook.formulas import number_text
 from calcbook.library import vocabulary
+from calcbook.library.cards import FILM_RESULTS
 from calcbook.library.operations import run
 from calcbook.properties import SATURATION_FRACTION
 from calcbook.quantities import Quantity, QuantityFault, QuantityKind, as_kind, unit_display
@@ -163,8 +164,6 @@ class _Analysis:
         self.dimensions = dict(chain.dimensions)
         self.used_cards: dict[str, str] = dict(chain.cards)
         self.inputs: dict[str, dict[str, np.ndarray]] = {}
-        # Steps and cases that are told to be impossible.
-        self.impossible: set[tuple[str, str]] = set()
         # The named results of the base case, which is solved first.
         self.results: dict[str, Result] = {}
 
@@ -246,7 +245,7 @@ class _Analysis:
                 self._stop_if_limit(name, solution)
                 self._explain(name, solution)
                 if not self.collector:
-                    self._stop_if_impossible(name, solution)
+                    self._stop_if_impossible(name, (solution,))
                 if self.collector:
                     return None
                 raise NotConverged(self.chain.calculation.number, name, condition)
@@ -258,8 +257,7 @@ class _Analysis:
             if check.level == "stop" and check.state == "outside":
                 self._report_stop(check)
         if not self.collector:
-            for solution in solutions.values():
-                self._stop_if_impossible(name, solution)
+            self._stop_if_impossible(name, solutions.values())
         # A number that a limit stops is not there to be judged.
         criteria = () if self.collector else self.criteria(name, results, solutions)
         terms = {condition: self._terms(solution) for condition, solution in solutions.items()}
@@ -310,14 +308,13 @@ class _Analysis:
                 )
                 return
 
-    def _stop_if_impossible(self, name: str, solution: Solution) -> None:
+    def _stop_if_impossible(self, name: str, solutions: Iterable[Solution]) -> None:
         """The first step of each term whose value its quantity cannot have: what follows from it is no number."""
-        told: set[str] = set()
-        for step, _ in impossible_steps(self.chain, solution):
-            if step.owner in told or (step.id, name) in self.impossible:
-                continue
-            told.add(step.owner)
-            self.impossible.add((step.id, name))
+        first: dict[str, tuple[ChainStep, float]] = {}
+        for solution in solutions:
+            for step, _ in impossible_steps(self.chain, solution):
+                first.setdefault(step.owner, (step, solution.number(step.id)))
+        for step, value in first.values():
             kind = step.kind
             assert kind is not None, "a step without a quantity has no bound"
             relation = getattr(getattr(step.operation, "relation", None), "text", "")
@@ -325,7 +322,7 @@ class _Analysis:
                 "step-not-possible",
                 self._place_of(step.owner),
                 f"{f'case {name}: ' if name else ''}{step.title} of {step.owner} cannot be",
-                found=f"{number_text(solution.number(step.id), 4)} {unit_display(kind.unit)}".rstrip(),
+                found=f"{number_text(value, 4)} {unit_display(kind.unit)}".rstrip(),
                 expected=f"{kind.name}{must_be(kind)}{f'; it is {step.symbol} = {relation}' if relation else ''}",
             )
 
@@ -1323,7 +1320,7 @@ def _accuracy_words(branch: Branch, candidate: Candidate) -> list[str]:
         used = "; ".join(
             f"{card.id}, which it uses: within {card.accuracy.within}"
             for card in candidate.cards
-            if card.accuracy is not None and card.gives in ("h", "Nu")
+            if card.accuracy is not None and card.gives in FILM_RESULTS
         )
         return [
             f"{branch.name}: no accuracy of {candidate.method.id} itself is stated{f'; {used}' if used else ''}."

@@ -13,6 +13,7 @@ from calcbook.calcfile.specified import is_open
 from calcbook.chain.circuit import Circuit
 from calcbook.chain.duty import DutyLayout
 from calcbook.chain.films import FilmScope
+from calcbook.chain.findings import factor_of_term
 from calcbook.chain.fins import FinnedSide, check_finned_situation, lay_out_fins, lay_out_fins_layer
 from calcbook.chain.gaps import lay_out_gap
 from calcbook.chain.growth import Grown, GrownDeposit, lay_out_growth, lay_out_thickness
@@ -1126,7 +1127,7 @@ class _Builder:
             self.collector.add("dimension-slip", term.place_of("scales with"), error.message)
             return coefficient
         factor = self.scope.relation_step(
-            f"{term.name}/factor",
+            factor_of_term(term),
             "x",
             "factor on the stated coefficient",
             term.name,

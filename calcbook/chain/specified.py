@@ -73,7 +73,7 @@ class SpecifiedFouling:
         """The specification lies where it can: a fault of the file otherwise."""
         figures = {SYMBOLS[self.specified.kind]: self._figure()}
         that = LIMITS[self.specified.kind]
-        self.is_share()
+        self._check_share()
         self._shares_keep_their_sum()
         found = [self._stop("specified fouling", that, figures, "a deposit adds resistance, or none")]
         shares = {
@@ -115,11 +115,11 @@ class SpecifiedFouling:
         )
         return ChainCheck(f"{OWNER} / {name}", OWNER, OWNER, limit, figures)
 
-    def is_share(self) -> bool:
-        """Whether the figure that the file specifies is a share; a given is looked at where it stands."""
-        value = self.specified.value
-        given = self.scope.calculation.givens.get(value.symbol) if value.symbol else None
-        return given is None or given.value.is_share(self.specified.kind, self.scope.collector)
+    def _check_share(self) -> None:
+        """That a given which the file specifies is a share: it is told where it stands."""
+        given = self.scope.calculation.givens.get(self.specified.value.symbol)
+        if given is not None:
+            given.value.is_share(self.specified.kind, self.scope.collector)
 
     def _figure(self) -> str:
         return self.scope.value(self.specified.value, "ratio", OWNER, self.specified.kind)

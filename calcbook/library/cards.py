@@ -12,6 +12,8 @@ from calcbook.faults import Place
 from calcbook.formulas import Relation
 from calcbook.quantities import QuantityKind
 
+# What a card of a film coefficient gives: the coefficient, or the Nusselt number that it follows from.
+FILM_RESULTS = ("h", "Nu")
 BAND = re.compile(r"([0-9]+(?:\.[0-9]+)?) %")
 STANDINGS = (
     "published",

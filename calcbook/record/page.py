@@ -6,7 +6,8 @@ from collections.abc import Iterable
 from dataclasses import dataclass, field
 
 from calcbook.calcfile import Calculation
-from calcbook.chain.outcome import CaseOutcome, CheckResult, Result, Solved
+from calcbook.chain.outcome import CaseOutcome, CheckResult, CriterionResult, Result, Solved
+from calcbook.chain.rating_outcome import DayOne
 from calcbook.chain.types import Chain
 from calcbook.library.cards import Material, Method, Situation
 from calcbook.record.digest import Digest
@@ -46,6 +47,15 @@ class Page:
     @property
     def is_preliminary(self) -> bool:
         return bool(self.solved.open_items)
+
+    @property
+    def day_one(self) -> DayOne | None:
+        """What the clean unit does at the same inlets; None without a rating that tells it."""
+        return self.solved.rating.day_one if self.solved.rating is not None else None
+
+    def missed_on_day_one(self) -> tuple[CriterionResult, ...]:
+        """The criteria that the clean unit does not meet at the same inlets, each with its state as the case."""
+        return tuple(item for item in (self.day_one.criteria if self.day_one else ()) if not item.met)
 
     @property
     def has_cases(self) -> bool:

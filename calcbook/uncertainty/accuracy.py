@@ -13,15 +13,13 @@ from dataclasses import dataclass
 from statistics import NormalDist
 
 from calcbook.library import Library
-from calcbook.library.cards import Accuracy, Method
+from calcbook.library.cards import FILM_RESULTS, Accuracy, Method
 from calcbook.uncertainty.distributions import LARGEST_NORMAL, Distribution, LogNormal, Rectangular, positive
 
 MEAN = re.compile(r"([0-9]+(?:\.[0-9]+)?) % mean")
 SHARE = re.compile(r"([0-9]+(?:\.[0-9]+)?) % of ")
 MOST = "most data"
 MOST_SHARE = 0.95
-# What a card of a film coefficient gives: the coefficient, or the Nusselt number that it follows from.
-FILM_RESULTS = ("h", "Nu")
 # The standing of an accuracy that was found against calculated figures: an exact solution at constant properties, say.
 OF_A_FIT = "independent numerics"
 

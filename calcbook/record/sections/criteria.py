@@ -65,10 +65,7 @@ def _within_a_tolerance(item: CriterionResult, page: Page) -> str:
 
 def _on_day_one(item: CriterionResult, page: Page) -> str:
     """The states of the clean unit at the same inlets in which a criterion that is met here is not."""
-    day = page.solved.rating.day_one if page.solved.rating is not None else None
-    failed = [
-        one.case for one in (day.criteria if day is not None else ()) if one.id == item.id and not one.met
-    ]
+    failed = [one.case for one in page.missed_on_day_one() if one.id == item.id]
     return f"; not met on day one: {', '.join(failed)}" if failed and item.met and not item.case else ""
 
 

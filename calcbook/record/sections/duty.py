@@ -74,7 +74,7 @@ def _arrangement(page: Page) -> list[tuple[str, str, str]]:
 
 def _reached_basis(page: Page) -> str:
     """What the heat that is reached rests on, and whether a saturated stream has that much."""
-    day = page.solved.rating.day_one if page.solved.rating is not None else None
+    day = page.day_one
     words = "effectiveness, from the same inlets"
     left = [check for check in (day.checks if day is not None else ()) if check.condition == WITH_ALLOWANCES]
     return f"{words}; {left[0].id}: {left[0].figure}, limit {left[0].limit}, outside" if left else words
@@ -270,7 +270,7 @@ def two_ways(page: Page) -> list[Block]:
 
 def day_one_blocks(page: Page) -> list[Block]:
     """The clean unit at the inlets of the duty, where there is a duty and something fouls."""
-    day = page.solved.rating.day_one if page.solved.rating is not None else None
+    day = page.day_one
     if day is None:
         return []
     states = {WITH_ALLOWANCES: day.service, "clean": day.clean}

@@ -174,8 +174,7 @@ def _criteria(page: Page) -> str:
 
 
 def _failed_on_day_one(page: Page) -> list[str]:
-    day = page.solved.rating.day_one if page.solved.rating is not None else None
-    failed = [f"{item.id}, {item.case}" for item in (day.criteria if day is not None else ()) if not item.met]
+    failed = [f"{item.id}, {item.case}" for item in page.missed_on_day_one()]
     return [f"Not met on day one: {'; '.join(failed)}."] if failed else []
 
 
@@ -447,13 +446,11 @@ def _survey(page: Page) -> list[str]:
 
 def _day_one(page: Page) -> list[str]:
     """What the unit leaves at the inlets of the duty, and the criteria that it does not meet there."""
-    day = page.solved.rating.day_one if page.solved.rating is not None else None
+    day = page.day_one
     left = [
         f"{check.id}, day one, {check.condition}: {check.figure}, limit {check.limit}: {verdict(check)}."
         for check in (day.checks if day is not None else ())
     ]
     return left + [
-        f"{item.id} is not met on day one, {item.case}: {item.that}."
-        for item in (day.criteria if day is not None else ())
-        if not item.met
+        f"{item.id} is not met on day one, {item.case}: {item.that}." for item in page.missed_on_day_one()
     ]
