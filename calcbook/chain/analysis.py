@@ -4,17 +4,17 @@ from __future__ import annotations
 
 import itertools
 import math
-from collections.abc import Callable, Iterable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass, replace
 
 import numpy as np
 
 from calcbook.calcfile.calculation import Criterion
 from calcbook.chain.allowance import LARGEST_ALLOWANCE, largest_allowances
-from calcbook.chain.alternatives import alternatives, needs_temperatures
-from calcbook.chain.checks import apply_acceptances, evaluate_check, state_of_check
+from calcbook.chain.checks import apply_acceptances, evaluate_check
 from calcbook.chain.circuit import branch_coefficient
 from calcbook.chain.completing import completed
+from calcbook.chain.cross_check import cross_check
 from calcbook.chain.duty import OWNER as DUTY
 from calcbook.chain.duty import duty_results, is_of_duty
 from calcbook.chain.ends import EndState, closed_ends, end_checks, end_states, end_surfaces
@@ -29,7 +29,7 @@ from calcbook.chain.findings import (
     stream_findings,
     wall_checks,
 )
-from calcbook.chain.gaps import PLACE, gaps, unused_steps, with_method
+from calcbook.chain.gaps import PLACE, gaps, unused_steps
 from calcbook.chain.latent import PHASE_CHANGE
 from calcbook.chain.outcome import (
     BranchRow,
@@ -37,7 +37,6 @@ from calcbook.chain.outcome import (
     CheckResult,
     ClosureRow,
     CriterionResult,
-    CrossRow,
     PropertyRow,
     Result,
     SensitivityRow,
@@ -57,7 +56,7 @@ from calcbook.chain.pressure import (
     pressure_notes,
 )
 from calcbook.chain.sensitivity import derivatives
-from calcbook.chain.solve import Solution, chosen, closed, conditions_of, solve, solve_both
+from calcbook.chain.solve import Solution, chosen, closed, conditions_of, solve_both
 from calcbook.chain.specified import OWNER as SPECIFIED
 from calcbook.chain.types import (
     CLEAN,
@@ -77,7 +76,6 @@ from calcbook.faults import Collector, Place, nearest_names, shown
 from calcbook.formulas import number_text
 from calcbook.library import vocabulary
 from calcbook.library.cards import FILM_RESULTS
-from calcbook.library.operations import run
 from calcbook.properties import SATURATION_FRACTION
 from calcbook.quantities import Quantity, QuantityFault, QuantityKind, as_kind, unit_display
 
@@ -189,7 +187,7 @@ class _Analysis:
             return None
         if self.chain.calculation.places:
             cases[0] = _with_mean(cases, self.chain.calculation.places)
-        cross = self._cross(cases[0])
+        cross = cross_check(self.chain, cases[0], self.dimensions)
         return Solved(
             self.chain,
             tuple(cases),
@@ -937,113 +935,7 @@ class _Analysis:
             result.append(replace(case, checks=checks, open_items=items))
         return result
 
-    # -- cross-check, closure, sensitivity ----------------------------------------------------------
-
-    def _cross(self, base: CaseOutcome) -> tuple[CrossRow, ...]:
-        """Every other method of a film's situation, put in its place and the circuit closed again."""
-        rows = []
-        for group in (self.chain.inner, self.chain.outer):
-            for branch in group.branches:
-                if branch.situation is None:
-                    continue
-                used = chosen(branch, base.solutions[SERVICE])
-                others = [
-                    candidate
-                    for candidate in (*branch.candidates, *branch.alternatives)
-                    if candidate is not used
-                ]
-                order = {method: place for place, method in enumerate(branch.situation.methods)}
-                others.sort(key=lambda candidate: order.get(candidate.method.id, len(order)))
-                rows += self._cross_rows(branch, used, others, base)
-                rows += [
-                    CrossRow(branch.name, method, "", "", False, math.nan, math.nan, math.nan, reason)
-                    for method, reason in branch.unusable.items()
-                ]
-        return (*rows, *self._cross_gaps(self.chain.case_inputs(""), base))
-
-    def _cross_gaps(self, inputs: Mapping[str, np.ndarray], base: CaseOutcome) -> list[CrossRow]:
-        """Every other method of a gap's situation, put in its place and the circuit closed again."""
-        rows = []
-        for layer, gap in gaps(self.chain):
-            for way in gap.ways:
-                used = chosen(way, base.solutions[SERVICE])
-                others = {part.method.id: part for part in (*way.candidates, *way.alternatives)}
-                others.pop(used.method.id, None)
-                for other in others.values():
-                    reason = self._out_of_range(other, self._at_solution(other, base.solutions[SERVICE]))
-                    changed = with_method(self.chain, layer, way, other)
-                    solution = None if reason else solve(changed, inputs, SERVICE)
-                    rows.append(self._cross_row(way, used, other, reason, solution, base))
-                rows += [
-                    CrossRow(way.name, method, "", "", False, math.nan, math.nan, math.nan, reason)
-                    for method, reason in way.unusable.items()
-                ]
-        return rows
-
-    def _cross_rows(
-        self, branch: Branch, used: Candidate, others: Sequence[Candidate], base: CaseOutcome
-    ) -> list[CrossRow]:
-        """A row for each method in place of the one that is used: what it gives, or why it is left out."""
-        left_out = [self._left_out(branch, other, base.solutions[SERVICE]) for other in others]
-        tried = [other for other, reason in zip(others, left_out, strict=True) if not reason]
-        solutions = iter(alternatives(self.chain, branch, tried, base.solutions[SERVICE]))
-        return [
-            self._cross_row(branch, used, other, reason, None if reason else next(solutions), base)
-            for other, reason in zip(others, left_out, strict=True)
-        ]
-
-    def _cross_row(
-        self,
-        branch: Branch,
-        used: Candidate,
-        other: Candidate,
-        reason: str,
-        solution: Solution | None,
-        base: CaseOutcome,
-    ) -> CrossRow:
-        """The row of one method: the solution with it in its place, or the reason why there is none."""
-        coefficient = overall = difference = math.nan
-        if solution is not None:
-            closes = bool(np.all(solution.converged))
-            reason = self._out_of_range(other, solution) if closes else "does not close here"
-            overall = solution.number(self.chain.results["U"])
-            difference = overall / base.results["U_service"].value - 1.0
-            if other.coefficient in solution.values:
-                coefficient = solution.number(other.coefficient)
-        method = other.method
-        return CrossRow(
-            branch.name,
-            method.id,
-            method.title,
-            method.family,
-            method.family == used.method.family,
-            coefficient,
-            overall,
-            difference,
-            reason,
-        )
-
-    def _left_out(self, branch: Branch, other: Candidate, solution: Solution) -> str:
-        """Why a method is not tried in place of a film's own; empty where it is."""
-        if not self.chain.has_temperatures and needs_temperatures(self.chain, branch, other):
-            return "it needs the temperature of the surface, and one bulk temperature is not stated"
-        return self._out_of_range(other, self._at_solution(other, solution))
-
-    def _at_solution(self, other: Candidate, solution: Solution) -> Solution:
-        """A method's own figures at the surface that the used method gives: enough to see most ranges."""
-        values = dict(solution.values)
-        run([step for step in other.steps if step.id not in values], values)
-        return replace(solution, values=values)
-
-    def _out_of_range(self, other: Candidate, solution: Solution) -> str:
-        """The first range or stop limit of a method that is not held, in words."""
-        for limit in other.checks:
-            if limit.limit.level not in ("stop", "range"):
-                continue
-            if state_of_check(limit, solution) in ("outside", "not evaluable"):
-                check = evaluate_check(limit, solution, "", self.dimensions)
-                return f"outside its range: {check.figure}, limit {check.limit}"
-        return ""
+    # -- closure, sensitivity ------------------------------------------------------------------------
 
     def _closure(self, solutions: Mapping[str, Solution]) -> tuple[ClosureRow, ...]:
         """Heat flow through each element from its two temperatures, summed drops, U·A on each surface."""

@@ -14,6 +14,7 @@ from calcbook.chain.analysis import is_found_later
 from calcbook.chain.completing import completed
 from calcbook.chain.ends import EndState, closed_ends, end_slopes, end_states
 from calcbook.chain.factors import with_factors
+from calcbook.chain.measured import Measured, measured
 from calcbook.chain.outcome import CaseOutcome, CriterionResult, Result, Solved
 from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.types import Chain, Layer
@@ -39,7 +40,6 @@ from calcbook.uncertainty.budget import (
     wide_slopes,
 )
 from calcbook.uncertainty.figures import Uncertain, method_figures, stated_figures
-from calcbook.uncertainty.measured import Measured, measured
 from calcbook.uncertainty.samples import OUTSIDE_ANY, ChainModel, Statement, mark_of
 from calcbook.uncertainty.sampling import GENERATOR, Drawn, Interval, Propagated, is_possible, propagate
 

@@ -13,12 +13,12 @@ from calcbook.chain.checks import NOT_EVALUABLE, OUTSIDE, check_states
 from calcbook.chain.completing import completed
 from calcbook.chain.ends import PLACES, end_states, has_ends
 from calcbook.chain.findings import ends_of, figures_to_hold, has_phase_to_keep
+from calcbook.chain.measured import Measured, condition_of
 from calcbook.chain.samples import Samples, mark_derived, mark_directions, mark_walls
 from calcbook.chain.solve import UNKNOWNS, Solution, closed, conditions_of, solve_both
 from calcbook.chain.types import CONDITIONS, Branch, Chain, ChainCheck, Group, Layer, StreamState
 from calcbook.properties import FluidAtPressure
 from calcbook.uncertainty.figures import has_floor
-from calcbook.uncertainty.measured import Measured, condition_of
 from calcbook.uncertainty.sampling import Sampled
 
 Array = np.ndarray

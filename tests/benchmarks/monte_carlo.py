@@ -25,11 +25,11 @@ from million_samples import FACTOR, ByHand
 from small_calculations import COOLER, chain_of
 
 from calcbook.chain.factors import with_factors
+from calcbook.chain.measured import Measured, measured
 from calcbook.chain.solve import Solution, solve
 from calcbook.chain.types import Chain
 from calcbook.faults import Collector
 from calcbook.uncertainty.figures import method_figures, stated_figures
-from calcbook.uncertainty.measured import Measured, measured
 from calcbook.uncertainty.samples import ChainModel
 from calcbook.uncertainty.sampling import MOST_TRIALS, Drawn, propagate
 

@@ -26,7 +26,7 @@ def test_together_and_alone_give_the_same_bits(name: str) -> None:
     for group in (chain.inner, chain.outer):
         for branch in group.branches:
             others = branch.alternatives
-            found = alternatives(chain, branch, others, base)
+            found = alternatives(chain, branch, others, inputs, base)
             assert len(found) == len(others)
             for other, together in zip(others, found, strict=True):
                 forced = {branch.name: other}

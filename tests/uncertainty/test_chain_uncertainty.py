@@ -21,10 +21,10 @@ from uncertain_calculations import (
 )
 
 from calcbook.chain.factors import with_factors
+from calcbook.chain.measured import measured
 from calcbook.chain.solve import solve
 from calcbook.interface import record_text, solve_file
 from calcbook.uncertainty.budget import wide_slopes
-from calcbook.uncertainty.measured import measured
 from calcbook.uncertainty.samples import ChainModel
 from calcbook.uncertainty.sampling import propagate
 
