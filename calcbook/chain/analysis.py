@@ -100,7 +100,6 @@ IMPLIED = {
 PLACES_SPREAD = 0.2
 # Slopes below this part of U are the rounding of sums that cancel.
 NOISE = 1e-13
-OPPOSITE = {">=": 1.0, ">": 1.0, "<=": -1.0, "<": -1.0}
 
 
 class NotConverged(Exception):
@@ -187,14 +186,17 @@ class _Analysis:
             return None
         if self.chain.calculation.places:
             cases[0] = _with_mean(cases, self.chain.calculation.places)
-        cross = cross_check(self.chain, cases[0], self.dimensions)
+        governing = _governing(cases, self.chain.calculation.places)
+        # Other methods are held where the verdicts are decided, beside the base case.
+        crossed = {case.name: case for case in (cases[0], governing or cases[0])}
+        cross = {name: cross_check(self.chain, case, self.dimensions) for name, case in crossed.items()}
         return Solved(
             self.chain,
             tuple(cases),
             cross,
             self._sensitivity(cases[0]),
             self.used_cards,
-            _governing(cases, self.chain.calculation.places),
+            (governing.name or "base") if governing is not None else "",
         )
 
     def _figures_are_found(self) -> bool:
@@ -791,8 +793,8 @@ class _Analysis:
             if stated is None:
                 continue
             limit = float(stated)
-            margin = float(criterion_margin(criterion, result.value, limit))
-            met = bool(criterion_met(criterion, margin))
+            margin = float(criterion.margin(result.value, limit))
+            met = bool(criterion.is_met(margin))
             found.append(
                 CriterionResult(
                     f"criterion {number}",
@@ -842,7 +844,7 @@ class _Analysis:
         until = solutions[SERVICE].number(self.chain.in_service["until"])
         if limit is None or not until >= float(limit):
             return None
-        met, words = OPPOSITE[criterion.operator] > 0.0, f"the duty is not lost within {stated.until.text}"
+        met, words = criterion.direction > 0.0, f"the duty is not lost within {stated.until.text}"
         return _told_in_words(number, criterion, case, kind, float(limit), met, words)
 
     def _report_unknown(self, criterion: Criterion, results: Mapping[str, Result]) -> None:
@@ -1035,7 +1037,7 @@ class CriterionFigures:
 
     @property
     def met(self) -> Array:
-        return criterion_met(self.criterion, self.margin)
+        return self.criterion.is_met(self.margin)
 
 
 def result_figures(chain: Chain, solutions: Mapping[str, Solution]) -> dict[str, ResultFigures]:
@@ -1074,9 +1076,7 @@ def criterion_figures(
         result = results.get(criterion.result)
         limit = analysis.limit_of(criterion, result.kind, solutions[SERVICE]) if result is not None else None
         if result is not None and limit is not None:
-            found.append(
-                CriterionFigures(number, criterion, criterion_margin(criterion, result.values, limit))
-            )
+            found.append(CriterionFigures(number, criterion, criterion.margin(result.values, limit)))
     return found
 
 
@@ -1098,7 +1098,7 @@ def clean_surface_criteria(
             float(np.ravel(figures)[0]) for figures in (results[item.criterion.result].values, item.margin)
         )
         if math.isfinite(value):
-            limit = value - margin * OPPOSITE[item.criterion.operator]
+            limit = value - margin * item.criterion.direction
             found.append(
                 CriterionResult(
                     f"criterion {item.number}",
@@ -1107,22 +1107,12 @@ def clean_surface_criteria(
                     value,
                     limit,
                     margin,
-                    bool(criterion_met(item.criterion, margin)),
+                    bool(item.criterion.is_met(margin)),
                     kind,
                     item.criterion.source,
                 )
             )
     return tuple(found)
-
-
-def criterion_margin(criterion: Criterion, value: Array | float, limit: Array | float) -> Array:
-    """Value less limit, in the direction that is good."""
-    return (np.asarray(value) - limit) * OPPOSITE[criterion.operator]
-
-
-def criterion_met(criterion: Criterion, margin: Array | float) -> Array:
-    """Whether a margin meets the criterion: at the limit itself only where the operator has an equal sign."""
-    return np.asarray(margin) >= 0.0 if "=" in criterion.operator else np.asarray(margin) > 0.0
 
 
 # --- small helpers ----------------------------------------------------------------------------------
@@ -1276,14 +1266,14 @@ def _with_mean(cases: list[CaseOutcome], places: tuple[str, ...]) -> CaseOutcome
     return replace(base, results=results, open_items=tuple(items))
 
 
-def _governing(cases: list[CaseOutcome], places: tuple[str, ...] = ()) -> str:
-    """The case with the smallest margin of the first criterion, else with the lowest U in service.
+def _governing(cases: list[CaseOutcome], places: tuple[str, ...]) -> CaseOutcome | None:
+    """The case with the smallest margin of the first criterion, else with the lowest U in service; None of one alone.
 
     A place along the unit is no case of its own.
     """
     cases = [case for case in cases if case.name not in places]
     if len(cases) == 1:
-        return ""
+        return None
     if all(case.criteria for case in cases):
-        return min(cases, key=lambda case: _least_margin(case.criteria[0])).name or "base"
-    return min(cases, key=lambda case: case.results["U_service"].value).name or "base"
+        return min(cases, key=lambda case: _least_margin(case.criteria[0]))
+    return min(cases, key=lambda case: case.results["U_service"].value)

@@ -11,6 +11,7 @@ import numpy as np
 from calcbook.chain.alternatives import alternatives, needs_temperatures
 from calcbook.chain.checks import evaluate_check, state_of_check
 from calcbook.chain.gaps import gaps, with_method
+from calcbook.chain.measured import measured
 from calcbook.chain.outcome import CaseOutcome, CrossRow
 from calcbook.chain.solve import Solution, chosen, solve
 from calcbook.chain.types import SERVICE, Branch, Candidate, Chain
@@ -105,7 +106,22 @@ class _CrossCheck:
             overall,
             difference,
             reason,
+            () if solution is None or reason else self._turned(solution),
         )
+
+    def _turned(self, solution: Solution) -> tuple[str, ...]:
+        """The ids of the criteria over results in service that have another verdict with a film's other method."""
+        stated = {criterion.text: criterion for criterion in self.chain.calculation.acceptance}
+        found = []
+        for item in self.case.criteria:
+            criterion = stated[item.that]
+            judged = measured(self.chain, criterion.result)
+            if judged is None or {condition for condition, _ in judged.parts.values()} != {SERVICE}:
+                continue
+            margin = criterion.margin(float(judged.value({SERVICE: solution.values})), item.limit)
+            if bool(criterion.is_met(margin)) != item.is_met_as_stated:
+                found.append(item.id)
+        return tuple(found)
 
     def _left_out(self, branch: Branch, other: Candidate) -> str:
         """Why a method is not tried in place of a film's own; empty where it is."""

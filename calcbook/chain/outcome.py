@@ -140,7 +140,10 @@ class PropertyRow(NamedTuple):
 
 
 class CrossRow(NamedTuple):
-    """Another method of the situation on the same film: what it gives, or why it was left out."""
+    """Another method of the situation on the same film: what it gives, or why it was left out.
+
+    ``turned`` are the ids of the case's criteria over results in service that have another verdict with it.
+    """
 
     term: str
     method: str
@@ -151,6 +154,7 @@ class CrossRow(NamedTuple):
     overall: float
     difference: float
     left_out: str = ""
+    turned: tuple[str, ...] = ()
 
 
 class ClosureRow(NamedTuple):
@@ -196,11 +200,14 @@ class CaseOutcome:
 
 @dataclass(frozen=True)
 class Solved:
-    """A solved calculation: the base case first, then the named cases."""
+    """A solved calculation: the base case first, then the named cases.
+
+    ``cross`` holds the cross-check of the base case and, where another case governs, of that one, by their names.
+    """
 
     chain: Chain
     cases: tuple[CaseOutcome, ...]
-    cross: tuple[CrossRow, ...]
+    cross: Mapping[str, tuple[CrossRow, ...]]
     sensitivity: tuple[SensitivityRow, ...]
     cards: Mapping[str, str]
     governing: str

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import re
+import shutil
 from pathlib import Path
 
 import numpy as np
@@ -10,7 +12,7 @@ import pytest
 from calcbook.chain.alternatives import alternatives, needs_temperatures
 from calcbook.chain.solve import solve
 from calcbook.chain.types import SERVICE, following_elements
-from calcbook.interface import solve_file
+from calcbook.interface import record_text, solve_file
 
 CALCS = Path(__file__).resolve().parents[2] / "calcs"
 
@@ -41,3 +43,39 @@ def test_together_and_alone_give_the_same_bits(name: str) -> None:
                     ), (other.method.id, key)
                 compared += needs_temperatures(chain, branch, other)
     assert compared > 1
+
+
+def test_the_governing_case_is_crossed_as_a_base_case_of_its_figures_is(tmp_path: Path) -> None:
+    text = (CALCS / "co-993.yaml").read_text(encoding="utf-8")
+    solved = solve_file(CALCS / "co-993.yaml")
+    assert solved.governing == "winter"
+    assert list(solved.cross) == ["", "winter"]
+    restated = solved.chain.calculation.cases["winter"]
+    for symbol, given in restated.items():
+        text = re.sub(rf"(?m)^(  {symbol}: .*?value: )[^,}}]+", rf"\g<1>{given.value.quantity.text}", text)
+    # The settings of the book hold here too: the site pressure is among the figures.
+    shutil.copy(CALCS / "book.yaml", tmp_path)
+    trial = tmp_path / "co-993.yaml"
+    trial.write_text(re.sub(r"(?m)^cases:\n(?: .*\n)+", "", text), encoding="utf-8")
+    alone = solve_file(trial)
+    assert list(alone.cross) == [""]
+    assert len(alone.cross[""]) == len(solved.cross["winter"]) > 20
+    for own, other in zip(alone.cross[""], solved.cross["winter"], strict=True):
+        assert own.method == other.method and own.turned == other.turned
+        assert own.left_out == other.left_out
+        # Series of properties over another range of temperature agree with the backend within 1e-11.
+        assert own.overall == pytest.approx(other.overall, rel=1e-10, nan_ok=True)
+
+
+def test_a_verdict_that_another_method_turns_is_among_the_cautions() -> None:
+    solved = solve_file(CALCS / "hr-821.yaml")
+    turned = {(case, row.method) for case, rows in solved.cross.items() for row in rows if row.turned}
+    assert turned == {("yearly cleaning", "dittus-boelter-mcadams")}
+    row = next(row for row in solved.cross["yearly cleaning"] if row.turned)
+    case = next(case for case in solved.cases if case.name == "yearly cleaning")
+    item = next(item for item in case.criteria if item.id in row.turned)
+    # The margin of area goes with U where the duty and its temperatures stand.
+    margin = (1.0 + item.value) * row.overall / case.results["U_service"].value - 1.0
+    assert item.is_met_as_stated and item.value >= 0.0 > margin
+    page = record_text(solved)
+    assert f"in case yearly cleaning: with {row.method} on {row.term}, within its range here, it is not met" in page

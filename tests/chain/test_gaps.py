@@ -261,7 +261,7 @@ def test_the_record_says_what_was_decided(tmp_path: Path) -> None:
     texts = {item.id: item for item in solved.base.assumptions}
     assert texts["gas/no radiation"].decided_by == "no emissivities of its sides are stated"
     assert texts["gas/method/service"].text == "service: method hollands-1984."
-    assert {row.method for row in solved.cross if row.term == "gas"} == {
+    assert {row.method for row in solved.cross[""] if row.term == "gas"} == {
         "hollands-1976",
         "globe-dropkin-1959",
         "enclosure-conduction",
@@ -274,7 +274,7 @@ def test_the_cross_check_closes_the_circuit_with_the_other_method(tmp_path: Path
     solved = analysed(
         tmp_path, window(UPRIGHT, "water", s="20 mm", H="0.5 m", T_in="12 degC", T_out="8 degC")
     )
-    row = next(row for row in solved.cross if row.method == "macgregor-emery-1969")
+    row = next(row for row in solved.cross[""] if row.method == "macgregor-emery-1969")
     forced = UPRIGHT + ", method: macgregor-emery-1969"
     other = chain_of(tmp_path, window(forced, "water", s="20 mm", H="0.5 m", T_in="12 degC", T_out="8 degC"))
     assert not row.left_out

@@ -94,7 +94,7 @@ def test_cards_of_the_library_are_not_called_so(solved: Solved) -> None:
 
 
 def test_general_methods_check_it(solved: Solved) -> None:
-    rows = {row.method: row for row in solved.cross if row.term == "condensate film"}
+    rows = {row.method: row for row in solved.cross[""] if row.term == "condensate film"}
     assert not rows["kern-1950"].left_out and not rows["kern-1950"].same_family
     assert abs(rows["kern-1950"].difference) < 0.1
     assert CARD not in rows

@@ -333,9 +333,3 @@ def test_a_stream_that_would_lose_more_pressure_than_it_has_is_an_open_item(tmp_
         r"Stream hot would lose [0-9.]+ bar of its 4 bar \(absolute\), (clean|service)\.",
         items["tube-side film/pressure lost"],
     )
-
-
-def test_a_governing_case_without_a_cross_check_is_a_caution() -> None:
-    words = "Other methods are held beside the base case alone, and case winter governs"
-    assert any(words in line for line in lines("co-993"))
-    assert not any("Other methods are held beside" in line for line in lines("wc-105"))

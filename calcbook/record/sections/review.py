@@ -133,15 +133,17 @@ def _closure(page: Page) -> str:
 
 
 def _other_methods(page: Page) -> str:
-    rows = [row for row in page.solved.cross if not row.left_out]
-    if not rows:
-        return "No other method applies here."
-    independent = [row for row in rows if not row.same_family]
-    low, high = (pick(row.difference for row in rows) for pick in (min, max))
-    return (
-        f"{counted(len(rows), 'other method', 'other methods')} within range, {len(independent)} of another"
-        f" family: U in service differs by {percent(low)} to {percent(high)}."
-    )
+    texts = []
+    for case, crossed in page.solved.cross.items():
+        rows = [row for row in crossed if not row.left_out]
+        if rows:
+            independent = [row for row in rows if not row.same_family]
+            low, high = (pick(row.difference for row in rows) for pick in (min, max))
+            texts.append(
+                f"{f'Case {case}: ' if case else ''}{counted(len(rows), 'other method', 'other methods')} within range,"
+                f" {len(independent)} of another family: U in service differs by {percent(low)} to {percent(high)}."
+            )
+    return " ".join(texts) or "No other method applies here."
 
 
 def _largest_effect(page: Page) -> str:
@@ -356,27 +358,15 @@ def _outside(page: Page) -> list[str]:
 
 
 def _undecided(page: Page) -> list[str]:
-    """Methods within their range with which a criterion on U in service has another verdict."""
-    lines = []
-    for item in page.base.criteria:
-        if not item.that.startswith(("U_service >", "U_service <")):
-            continue
-        sign = 1.0 if ">" in item.that else -1.0
-        for row in page.solved.cross:
-            met = (row.overall - item.limit) * sign >= 0.0
-            if not row.left_out and met != item.is_met_as_stated:
-                lines.append(
-                    f"{item.id} ({item.that}) depends on the method: with {row.method} on {row.term}, within its"
-                    f" range here, it is {'met' if met else 'not met'}."
-                )
-    governing = page.solved.governing
-    others = any(not row.left_out for row in page.solved.cross)
-    if others and governing and governing != case_name("") and page.calculation.acceptance:
-        lines.append(
-            f"Other methods are held beside the base case alone, and case {governing} governs: whether its verdicts"
-            " depend on the method is not shown."
-        )
-    return lines
+    """Methods within their range with which a criterion in service has another verdict."""
+    return [
+        f"{item.id} ({item.that}) depends on the method{f' in case {case.name}' if case.name else ''}: with"
+        f" {row.method} on {row.term}, within its range here, it is {'not met' if item.is_met_as_stated else 'met'}."
+        for case in page.solved.cases
+        for item in case.criteria
+        for row in page.solved.cross.get(case.name, ())
+        if item.id in row.turned
+    ]
 
 
 def _negative(page: Page) -> list[str]:

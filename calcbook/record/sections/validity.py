@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 from calcbook.chain.outcome import CheckResult, ClosureRow, CrossRow
 from calcbook.chain.types import CONDITIONS
 from calcbook.quantities import in_unit
 from calcbook.record.blocks import Block, Heading, Paragraph, Table
 from calcbook.record.numbers import CONCLUSION_DIGITS, NOT_USED, number, percent, report_unit, unit_text
-from calcbook.record.page import HOUSE_METHOD, Page, counted
+from calcbook.record.page import HOUSE_METHOD, Page, case_name, counted
 
 PUBLISHED = "published"
 RESIDUAL_DIGITS = 2
@@ -132,18 +134,33 @@ def cross_check(page: Page) -> list[Block]:
         Heading(2, "10. Cross-check and closure"),
         Heading(3, "Cross-check by other methods"),
     ]
-    used = tuple(row for row in page.solved.cross if not row.left_out)
-    out = tuple(row for row in page.solved.cross if row.left_out)
-    if not page.solved.cross:
+    crossed = page.solved.cross
+    if not any(crossed.values()):
         blocks.append(Paragraph("No film of this calculation has another method: no cross-check is made."))
-    if used:
-        unit = unit_text(report_unit(page.base.results["U_service"].kind, page.calculation.report))
-        blocks += [
+    if any(not row.left_out for rows in crossed.values() for row in rows):
+        blocks.append(
             Paragraph(
                 "Each other method within its range here is put in the place of the one used and the"
                 " circuit is closed again. Methods of one family share an ancestor and are not independent"
                 " of each other."
-            ),
+            )
+        )
+    for case, rows in crossed.items():
+        if len(crossed) > 1 and rows:
+            governs = ", which governs" if case_name(case) == page.solved.governing else ""
+            blocks.append(Heading(4, f"Case {case_name(case)}{governs}"))
+        blocks += _crossed(rows, page)
+    return [*blocks, *_closure(page)]
+
+
+def _crossed(rows: Sequence[CrossRow], page: Page) -> list[Block]:
+    """The other methods of one case: what those within range give, and why others are left out."""
+    blocks: list[Block] = []
+    used = tuple(row for row in rows if not row.left_out)
+    out = tuple(row for row in rows if row.left_out)
+    if used:
+        unit = unit_text(report_unit(page.base.results["U_service"].kind, page.calculation.report))
+        blocks.append(
             Table(
                 (
                     "Film",
@@ -155,8 +172,8 @@ def cross_check(page: Page) -> list[Block]:
                     "Independent of the method used",
                 ),
                 tuple(_cross_row(row, page) for row in used),
-            ),
-        ]
+            )
+        )
     elif out:
         blocks.append(Paragraph("No other method is within its range here."))
     if out:
@@ -167,7 +184,7 @@ def cross_check(page: Page) -> list[Block]:
                 tuple((row.term, row.method, row.left_out) for row in out),
             ),
         ]
-    return [*blocks, *_closure(page)]
+    return blocks
 
 
 def _cross_row(row: CrossRow, page: Page) -> tuple[str, ...]:
