@@ -7,8 +7,6 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import NamedTuple
 
-import numpy as np
-
 from calcbook.calcfile.links import Link
 from calcbook.calcfile.survey import Survey
 from calcbook.calcfile.uncertainty import UncertaintyText
@@ -278,14 +276,6 @@ class Criterion(NamedTuple):
     def direction(self) -> float:
         """1 where more of the result is good, −1 where less is."""
         return 1.0 if ">" in self.operator else -1.0
-
-    def margin(self, value: np.ndarray | float, limit: np.ndarray | float) -> np.ndarray:
-        """Value less limit, in the direction that is good."""
-        return (np.asarray(value) - limit) * self.direction
-
-    def is_met(self, margin: np.ndarray | float) -> np.ndarray:
-        """Whether a margin meets it: at the limit itself only where the operator has an equal sign."""
-        return np.asarray(margin) >= 0.0 if "=" in self.operator else np.asarray(margin) > 0.0
 
 
 class Acceptance(NamedTuple):

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import replace
+from typing import NamedTuple
 
 import numpy as np
 
@@ -19,25 +20,25 @@ from calcbook.chain.types import (
 )
 
 
-def alternatives(
-    chain: Chain,
-    branch: Branch,
-    others: Sequence[Candidate],
-    inputs: Mapping[str, np.ndarray],
-    own: Solution,
-) -> list[Solution]:
-    """The solution of a case with each candidate in place of a film's own; ``own`` is that with its own.
+class Alternative(NamedTuple):
+    """A candidate in place of a film's own: ``inputs`` of the case as the file states them, ``own`` its solution."""
 
-    ``inputs`` are those of the case, as the file states them.
+    candidate: Candidate
+    inputs: Mapping[str, np.ndarray]
+    own: Solution
+
+
+def alternatives(chain: Chain, branch: Branch, others: Sequence[Alternative]) -> list[Solution]:
+    """The solution of a case with each candidate in place of a film's own.
 
     Those that follow the temperature of the surface are closed together, a sample each, so that all they
     share is evaluated once. A sample's answer does not depend on its neighbours.
     """
-    follow = [needs_temperatures(chain, branch, other) for other in others]
+    follow = [needs_temperatures(chain, branch, other.candidate) for other in others]
     together = [other for other, follows in zip(others, follow, strict=True) if follows]
-    solved = iter(_together(chain, branch, together, inputs, own)) if together else iter(())
+    solved = iter(_together(chain, branch, together)) if together else iter(())
     return [
-        next(solved) if follows else solve(chain, inputs, SERVICE, {branch.name: other})
+        next(solved) if follows else solve(chain, other.inputs, SERVICE, {branch.name: other.candidate})
         for other, follows in zip(others, follow, strict=True)
     ]
 
@@ -51,30 +52,32 @@ def _group_of(chain: Chain, branch: Branch) -> Group:
     return next(group for group in (chain.inner, chain.outer) if branch in group.branches)
 
 
-def _together(
-    chain: Chain,
-    branch: Branch,
-    others: Sequence[Candidate],
-    inputs: Mapping[str, np.ndarray],
-    own: Solution,
-) -> list[Solution]:
+def _together(chain: Chain, branch: Branch, others: Sequence[Alternative]) -> list[Solution]:
     """One call for all: a film whose candidates are the others, each chosen for a sample of its own.
 
-    Where the case closed with as many moving elements, the circuits are begun from there.
+    Where the cases closed with as many moving elements, the circuits are begun from there.
     """
     group = _group_of(chain, branch)
-    film = replace(branch, candidates=tuple(others), choice=())
+    candidates = {id(other.candidate): other.candidate for other in others}
+    film = replace(branch, candidates=tuple(candidates.values()), choice=())
     changed = replace(group, branches=tuple(film if one is branch else one for one in group.branches))
     elements = tuple(changed if element is group else element for element in chain.elements)
-    first = next(iter(inputs))
-    inputs = {**inputs, first: np.full(len(others), float(inputs[first]))}
     changed_chain = replace(chain, elements=elements)
+    places = {key: place for place, key in enumerate(candidates)}
     is_near = following_elements(changed_chain) == following_elements(chain)
+    starts = [other.own.unknowns for other in others if other.own.unknowns is not None]
     solution = solve(
         changed_chain,
-        inputs,
+        _rows([other.inputs for other in others]),
         SERVICE,
-        choices={branch.name: np.arange(len(others))},
-        start=own.unknowns_for(len(others)) if is_near else None,
+        choices={branch.name: np.array([places[id(other.candidate)] for other in others])},
+        start=np.column_stack(starts) if is_near else None,
     )
     return [solution.sample(number) for number in range(len(others))]
+
+
+def _rows(inputs: Sequence[Mapping[str, np.ndarray]]) -> dict[str, np.ndarray]:
+    """The inputs of several cases as one: a row of samples for what differs, and for the first figure in any case."""
+    rows = {name: np.array([float(one[name]) for one in inputs]) for name in inputs[0]}
+    first = next(iter(rows))
+    return {name: row if name == first or (row != row[0]).any() else row[0] for name, row in rows.items()}

@@ -14,6 +14,7 @@ from calcbook.chain.allowance import LARGEST_ALLOWANCE, largest_allowances
 from calcbook.chain.checks import apply_acceptances, evaluate_check
 from calcbook.chain.circuit import branch_coefficient
 from calcbook.chain.completing import completed
+from calcbook.chain.criteria import criterion_margin, is_met
 from calcbook.chain.cross_check import cross_check
 from calcbook.chain.duty import OWNER as DUTY
 from calcbook.chain.duty import duty_results, is_of_duty
@@ -189,7 +190,7 @@ class _Analysis:
         governing = _governing(cases, self.chain.calculation.places)
         # Other methods are held where the verdicts are decided, beside the base case.
         crossed = {case.name: case for case in (cases[0], governing or cases[0])}
-        cross = {name: cross_check(self.chain, case, self.dimensions) for name, case in crossed.items()}
+        cross = cross_check(self.chain, list(crossed.values()), self.dimensions)
         return Solved(
             self.chain,
             tuple(cases),
@@ -793,8 +794,8 @@ class _Analysis:
             if stated is None:
                 continue
             limit = float(stated)
-            margin = float(criterion.margin(result.value, limit))
-            met = bool(criterion.is_met(margin))
+            margin = float(criterion_margin(criterion, result.value, limit))
+            met = bool(is_met(criterion, margin))
             found.append(
                 CriterionResult(
                     f"criterion {number}",
@@ -1037,7 +1038,7 @@ class CriterionFigures:
 
     @property
     def met(self) -> Array:
-        return self.criterion.is_met(self.margin)
+        return is_met(self.criterion, self.margin)
 
 
 def result_figures(chain: Chain, solutions: Mapping[str, Solution]) -> dict[str, ResultFigures]:
@@ -1076,7 +1077,9 @@ def criterion_figures(
         result = results.get(criterion.result)
         limit = analysis.limit_of(criterion, result.kind, solutions[SERVICE]) if result is not None else None
         if result is not None and limit is not None:
-            found.append(CriterionFigures(number, criterion, criterion.margin(result.values, limit)))
+            found.append(
+                CriterionFigures(number, criterion, criterion_margin(criterion, result.values, limit))
+            )
     return found
 
 
@@ -1107,7 +1110,7 @@ def clean_surface_criteria(
                     value,
                     limit,
                     margin,
-                    bool(item.criterion.is_met(margin)),
+                    bool(is_met(item.criterion, margin)),
                     kind,
                     item.criterion.source,
                 )

@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
 
-from calcbook.chain.alternatives import alternatives, needs_temperatures
+from calcbook.chain.alternatives import Alternative, alternatives, needs_temperatures
 from calcbook.chain.checks import evaluate_check, state_of_check
+from calcbook.chain.criteria import criterion_margin, is_met
 from calcbook.chain.gaps import gaps, with_method
 from calcbook.chain.measured import measured
 from calcbook.chain.outcome import CaseOutcome, CrossRow
@@ -19,16 +20,36 @@ from calcbook.formulas import Dimension
 from calcbook.library.operations import run
 
 
-def cross_check(chain: Chain, case: CaseOutcome, dimensions: Mapping[str, Dimension]) -> tuple[CrossRow, ...]:
-    """A row for every other method of every film and gap in service: what it gives, or why it is left out.
+def cross_check(
+    chain: Chain, cases: Sequence[CaseOutcome], dimensions: Mapping[str, Dimension]
+) -> dict[str, tuple[CrossRow, ...]]:
+    """By case a row for every other method of every film and gap in service: what it gives, or why it is left out.
 
-    ``dimensions`` are those of every step of the chain, for the words of limits.
+    ``dimensions`` are those of every step of the chain, for the words of limits. The methods of a film are tried
+    in all cases at once.
     """
-    return _CrossCheck(chain, case, dimensions).rows()
+    crossed = [_CrossedCase(chain, case, dimensions) for case in cases]
+    rows: dict[str, list[CrossRow]] = {case.name: [] for case in cases}
+    for branch in (*chain.inner.branches, *chain.outer.branches):
+        if branch.situation is None:
+            continue
+        others = [cross.others(branch) for cross in crossed]
+        tried = [
+            Alternative(other, cross.inputs, cross.service)
+            for cross, group in zip(crossed, others, strict=True)
+            for other, reason in group
+            if not reason
+        ]
+        solutions = iter(alternatives(chain, branch, tried))
+        for cross, group in zip(crossed, others, strict=True):
+            rows[cross.case.name] += cross.of_film(branch, group, solutions)
+    return {cross.case.name: (*rows[cross.case.name], *cross.of_gaps()) for cross in crossed}
 
 
 @dataclass(frozen=True)
-class _CrossCheck:
+class _CrossedCase:
+    """One case with other methods in its films and gaps."""
+
     chain: Chain
     case: CaseOutcome
     dimensions: Mapping[str, Dimension]
@@ -41,25 +62,28 @@ class _CrossCheck:
     def inputs(self) -> dict[str, np.ndarray]:
         return self.chain.case_inputs(self.case.name)
 
-    def rows(self) -> tuple[CrossRow, ...]:
-        rows = []
-        for group in (self.chain.inner, self.chain.outer):
-            for branch in group.branches:
-                if branch.situation is None:
-                    continue
-                used = chosen(branch, self.service)
-                others = [
-                    candidate
-                    for candidate in (*branch.candidates, *branch.alternatives)
-                    if candidate is not used
-                ]
-                order = {method: place for place, method in enumerate(branch.situation.methods)}
-                others.sort(key=lambda candidate: order.get(candidate.method.id, len(order)))
-                rows += self._of_film(branch, used, others)
-                rows += _unusable(branch)
-        return (*rows, *self._of_gaps())
+    def others(self, branch: Branch) -> list[tuple[Candidate, str]]:
+        """The methods of a film but the one that is used, in the order of the situation; why each is left out, or ''."""
+        assert branch.situation is not None, "a stated film has no methods"
+        used = chosen(branch, self.service)
+        order = {method: place for place, method in enumerate(branch.situation.methods)}
+        others = [other for other in (*branch.candidates, *branch.alternatives) if other is not used]
+        others.sort(key=lambda other: order.get(other.method.id, len(order)))
+        return [(other, self._left_out(branch, other)) for other in others]
 
-    def _of_gaps(self) -> list[CrossRow]:
+    def of_film(
+        self, branch: Branch, others: Sequence[tuple[Candidate, str]], solutions: Iterator[Solution]
+    ) -> list[CrossRow]:
+        """A row for each other method of a film; ``solutions`` yields that of each which nothing leaves out."""
+        used = chosen(branch, self.service)
+        rows = [
+            self._row(branch, used, other, reason, None if reason else next(solutions))
+            for other, reason in others
+        ]
+        return [*rows, *_unusable(branch)]
+
+    def of_gaps(self) -> list[CrossRow]:
+        """A row for each other way across each gap."""
         rows = []
         for layer, gap in gaps(self.chain):
             for way in gap.ways:
@@ -73,15 +97,6 @@ class _CrossCheck:
                     rows.append(self._row(way, used, other, reason, solution))
                 rows += _unusable(way)
         return rows
-
-    def _of_film(self, branch: Branch, used: Candidate, others: Sequence[Candidate]) -> list[CrossRow]:
-        left_out = [self._left_out(branch, other) for other in others]
-        tried = [other for other, reason in zip(others, left_out, strict=True) if not reason]
-        solutions = iter(alternatives(self.chain, branch, tried, self.inputs, self.service))
-        return [
-            self._row(branch, used, other, reason, None if reason else next(solutions))
-            for other, reason in zip(others, left_out, strict=True)
-        ]
 
     def _row(
         self, branch: Branch, used: Candidate, other: Candidate, reason: str, solution: Solution | None
@@ -118,8 +133,8 @@ class _CrossCheck:
             judged = measured(self.chain, criterion.result)
             if judged is None or {condition for condition, _ in judged.parts.values()} != {SERVICE}:
                 continue
-            margin = criterion.margin(float(judged.value({SERVICE: solution.values})), item.limit)
-            if bool(criterion.is_met(margin)) != item.is_met_as_stated:
+            margin = criterion_margin(criterion, float(judged.value({SERVICE: solution.values})), item.limit)
+            if bool(is_met(criterion, margin)) != item.is_met_as_stated:
                 found.append(item.id)
         return tuple(found)
 

@@ -9,7 +9,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from calcbook.chain.alternatives import alternatives, needs_temperatures
+from calcbook.chain.alternatives import Alternative, alternatives, needs_temperatures
 from calcbook.chain.solve import solve
 from calcbook.chain.types import SERVICE, following_elements
 from calcbook.interface import record_text, solve_file
@@ -28,7 +28,7 @@ def test_together_and_alone_give_the_same_bits(name: str) -> None:
     for group in (chain.inner, chain.outer):
         for branch in group.branches:
             others = branch.alternatives
-            found = alternatives(chain, branch, others, inputs, base)
+            found = alternatives(chain, branch, [Alternative(other, inputs, base) for other in others])
             assert len(found) == len(others)
             for other, together in zip(others, found, strict=True):
                 forced = {branch.name: other}
@@ -78,4 +78,7 @@ def test_a_verdict_that_another_method_turns_is_among_the_cautions() -> None:
     margin = (1.0 + item.value) * row.overall / case.results["U_service"].value - 1.0
     assert item.is_met_as_stated and item.value >= 0.0 > margin
     page = record_text(solved)
-    assert f"in case yearly cleaning: with {row.method} on {row.term}, within its range here, it is not met" in page
+    assert (
+        f"in case yearly cleaning: with {row.method} on {row.term}, within its range here, it is not met"
+        in page
+    )
