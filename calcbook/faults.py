@@ -86,7 +86,7 @@ class Faults(Exception):
 
     def __init__(self, faults: Iterable[Fault]):
         self.faults: tuple[Fault, ...] = _without_echoes(
-            sorted(set(faults), key=lambda fault: fault.sort_key)
+            sorted(dict.fromkeys(faults), key=lambda fault: fault.sort_key)
         )
         super().__init__(f"{len(self.faults)} fault(s)")
 

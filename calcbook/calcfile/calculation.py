@@ -279,16 +279,31 @@ class Criterion(NamedTuple):
 
 
 class Acceptance(NamedTuple):
-    """The engineer's answer to a failed check, with its bound and reason."""
+    """The engineer's answer to a failed check, with its bound and reason.
+
+    It acts in one ``condition``, or in both where that is empty, and in one ``case`` (the base case by its empty name),
+    or in every one where that is None.
+    """
 
     check: str
-    within: str
+    condition: str
+    case: str | None
     direction: str
     bound: Value | None
     because: str
     by: str
     date: str
     place: Place
+
+    def acts_in(self, condition: str, case: str) -> bool:
+        """Whether it answers for a check in a condition of a case."""
+        return self.condition in ("", condition) and self.case in (None, case)
+
+    def meets(self, other: Acceptance) -> bool:
+        """Whether both answer for one check in some condition of some case."""
+        conditions, cases = {self.condition, other.condition}, {self.case, other.case}
+        together = len(conditions) == 1 or "" in conditions
+        return self.check == other.check and together and (len(cases) == 1 or None in cases)
 
 
 class Report(NamedTuple):

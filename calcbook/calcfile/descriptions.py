@@ -513,7 +513,7 @@ ACCEPT = Description(
     "the engineer's answer to a failed check",
     (
         Key("check", "id of the check", "name", required=True),
-        Key("in", "all, a condition or a case", "name"),
+        Key("in", "all, a condition, a case, or a case with a condition behind it", "name"),
         Key("down to", "lowest value of the checked figure that is accepted", "name"),
         Key("up to", "highest value of the checked figure that is accepted", "name"),
         Key("because", "the reason", required=True),

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import datetime
+import itertools
 import keyword
 import math
 import re
@@ -1409,22 +1410,13 @@ class Reader:
                     "an accepted check states its bound",
                     expected="down to: … or up to: … (of the checked figure)",
                 )
-            known = ("all", "clean", "service", *cases)
-            within = fields.scalar("in")
-            if within is not None and within.text not in known:
-                self.collector.add(
-                    "accept-unknown",
-                    within.place,
-                    f"`{shown(within.text)}` is no condition or case",
-                    found=shown(within.text),
-                    expected=", ".join(known),
-                    nearest=nearest_names(within.text, known),
-                )
+            condition, case = self._acts_in(fields.scalar("in"), cases)
             check = " / ".join(part.strip() for part in fields.text("check").split("/"))
             result.append(
                 Acceptance(
                     check,
-                    fields.text("in") or "all",
+                    condition,
+                    case,
                     direction,
                     bound,
                     self.saying(fields, "because"),
@@ -1433,4 +1425,35 @@ class Reader:
                     fields.place_of("check"),
                 )
             )
+        for first, second in itertools.combinations(result, 2):
+            if first.meets(second):
+                self.collector.add(
+                    "accept-twice",
+                    second.place,
+                    "the check is accepted twice where both act",
+                    found=shown(second.check),
+                    expected=f"one answer to it in each condition of each case; the other is in line {first.place.line}",
+                )
         return tuple(result)
+
+    def _acts_in(
+        self, node: Scalar | None, cases: Mapping[str, Mapping[str, Given]]
+    ) -> tuple[str, str | None]:
+        """Condition and case of an acceptance; empty and None stand for every one."""
+        known: dict[str, tuple[str, str | None]] = {"all": ("", None), "clean": ("clean", None)}
+        known |= {"service": ("service", None)}
+        plain = (*known, "base", *cases)
+        for name in ("base", *cases):
+            case = "" if name == "base" else name
+            known[name] = ("", case)
+            known |= {f"{name} {condition}": (condition, case) for condition in ("clean", "service")}
+        if node is not None and node.text not in known:
+            self.collector.add(
+                "accept-unknown",
+                node.place,
+                f"`{shown(node.text)}` is no condition or case",
+                found=shown(node.text),
+                expected=f"{', '.join(plain)}, or a case with a condition behind it, as in `base service`",
+                nearest=nearest_names(node.text, known),
+            )
+        return known.get(node.text if node is not None else "all", ("", None))

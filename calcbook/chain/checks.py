@@ -33,6 +33,8 @@ Array = np.ndarray
 # What a limit can be at a sample; arrays of states hold the place in this list.
 STATES = ("within", "outside", "not evaluable", "not counting")
 WITHIN, OUTSIDE, NOT_EVALUABLE, NOT_COUNTING = range(len(STATES))
+# The side on which a bound of an acceptance stops nothing.
+OPEN_SIDE = {"down to": "above", "up to": "below"}
 OPERATORS = {">=": "≥", "<=": "≤", ">": ">", "<": "<", "==": "=", "!=": "≠"}
 
 
@@ -63,7 +65,26 @@ def evaluate_check(
         check.limit.because,
         check.limit.source,
         check.limit.standing,
+        _side(check, arguments) if state == "outside" else "",
     )
+
+
+def _side(check: ChainCheck, arguments: Mapping[str, Array]) -> str:
+    """On which side of its limit a figure outside is: below, above, or neither for a limit on a choice."""
+    tree = check.limit.that.tree
+    if not isinstance(tree, Compare):
+        return ""
+    operands, place = _checked_place(tree)
+    numbers = [float(np.asarray(evaluate(operand, arguments)).ravel()[0]) for operand in operands]
+    for left, (operator, _) in enumerate(tree.rest):
+        if place not in (left, left + 1) or operator in ("==", "!="):
+            continue
+        low, high = (numbers[left], numbers[left + 1])[:: 1 if operator in ("<", "<=") else -1]
+        if not (low <= high if "=" in operator else low < high):
+            # The greater of both should be the smaller one.
+            is_first = (left == place) == (operator in ("<", "<="))
+            return "above" if is_first else "below"
+    return ""
 
 
 def state_of_check(check: ChainCheck, solution: Solution) -> str:
@@ -228,10 +249,10 @@ def apply_acceptances(
 ) -> tuple[CheckResult, ...]:
     """Outside or not evaluable range checks that the file accepts, with its bound and reason.
 
-    Codes: accept-unknown for an id that matches no check, unit-dimension for a bound of another quantity.
+    Codes: accept-unknown for an id that matches no check, unit-dimension for a bound of another quantity,
+    accept-direction for one on the side where the figure is within.
     """
     known = dict.fromkeys(result.id for result in results)
-    cases = {result.case for result in results}
     for acceptance in chain.calculation.accept:
         if acceptance.check not in known:
             collector.add(
@@ -242,19 +263,12 @@ def apply_acceptances(
                 expected="the id of a check in the record's validity table",
                 nearest=nearest_names(acceptance.check, known),
             )
-        if acceptance.within not in ("all", "clean", "service", *cases):
-            collector.add(
-                "accept-unknown",
-                acceptance.place,
-                f"`in: {shown(acceptance.within)}` is no condition or case",
-                expected=", ".join(("all", "clean", "service", *(case for case in cases if case))),
-            )
     return tuple(_accepted(chain, result, collector) for result in results)
 
 
 def _accepted(chain: Chain, result: CheckResult, collector: Collector) -> CheckResult:
     for acceptance in chain.calculation.accept:
-        if acceptance.check != result.id or acceptance.within not in ("all", result.condition, result.case):
+        if acceptance.check != result.id or not acceptance.acts_in(result.condition, result.case):
             continue
         bound = _bound(acceptance, result, collector)
         if bound is None:
@@ -267,10 +281,24 @@ def _accepted(chain: Chain, result: CheckResult, collector: Collector) -> CheckR
             return result._replace(accepted=f"accepted though within: {words}")
         if result.level == "stop" or result.state not in ("outside", "not evaluable"):
             return result
+        if result.side and OPEN_SIDE[acceptance.direction] == result.side:
+            collector.add(
+                "accept-direction",
+                acceptance.bound.place if acceptance.bound else acceptance.place,
+                f"the figure is {result.side} its limit, and the bound lets it go there without end"
+                f" ({result.figure}, limit {result.limit}{_where(result)})",
+                found=acceptance.direction,
+                expected=f"{'down to' if result.side == 'below' else 'up to'}: …",
+            )
+            return result
         if bool(within_bound(acceptance.direction, bound, np.asarray(result.value))):
             return result._replace(state="accepted", accepted=words)
         return result._replace(accepted=f"beyond the accepted bound: {words}")
     return result
+
+
+def _where(result: CheckResult) -> str:
+    return f", case {result.case}, {result.condition}" if result.case else f", {result.condition}"
 
 
 def within_bound(direction: str, bound: float, figures: Array) -> Array:

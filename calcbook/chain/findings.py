@@ -522,6 +522,7 @@ def _wall_check(item: WallLimit, case: str, condition: str) -> CheckResult:
         item.because,
         item.provider,
         "independent library",
+        "" if state != "outside" else "above" if item.sign == "<" else "below",
     )
 
 

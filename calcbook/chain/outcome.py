@@ -22,7 +22,8 @@ class CheckResult(NamedTuple):
     """One limit evaluated in one condition of one case.
 
     ``state``: within, outside, accepted, not evaluable, or not counting (the part it limits does not
-    matter here). ``figure`` and ``limit`` are printed texts; ``value`` is the checked figure in SI.
+    matter here). ``figure`` and ``limit`` are printed texts; ``value`` is the checked figure in SI. ``side`` says
+    where a figure outside is: below or above its limit, or nothing where that has no meaning.
     """
 
     id: str
@@ -40,6 +41,7 @@ class CheckResult(NamedTuple):
     because: str
     source: str
     standing: str
+    side: str = ""
     accepted: str = ""
 
 

@@ -367,4 +367,5 @@ def _caution(
         because,
         source,
         standing,
+        "below" if value < ends[0] else "above",
     )

@@ -355,22 +355,17 @@ class _Limits:
         return [item for item in self.chain.calculation.accept if item.check == name]
 
     def _with_acceptances(self, name: str, limit: _Limit, condition: str) -> Array:
-        """The codes with the engineer's acceptances; the first that holds for a sample settles it."""
+        """The codes with the engineer's acceptances; one at most acts on a sample."""
         codes = limit.codes
         if limit.level == "stop" or limit.figure is None:
             return codes
-        unsettled = np.ones(self.case_of.shape, dtype=bool)
         for item in self._acceptances(name):
-            everywhere = item.within in ("all", condition)
-            applies = unsettled & (
-                everywhere | np.array([case == item.within for case in self.cases])[self.case_of]
-            )
+            applies = np.array([item.acts_in(condition, case) for case in self.cases])[self.case_of]
             if item.bound is not None:
                 bound = (item.bound.quantity or read_any(item.bound.text)).value
                 held = within_bound(item.direction, bound, limit.figure)
                 codes = np.where(applies & held & (codes == BROKEN), ACCEPTED, codes)
                 limit.margins.append(_fixed_margins(limit.figure - bound))
-            unsettled &= ~applies
         return codes
 
 
