@@ -30,7 +30,8 @@ class Life:
     ``issued`` says the kind, revision and date of the issue that this content has, or is empty. ``notice``
     holds the sentences that must stand on top of the record: a preliminary issue, a calculation that is void.
     ``changes`` are the blocks of the short comparison with the last issued revision. ``answers`` are the
-    words of the checkers whose sign-off is valid, by the number of the question in the review.
+    words of the checkers whose sign-off is valid, by the number of the question in the review; ``remarks`` are theirs
+    to what the runner decided, by its id, where they wrote more than that they acknowledge it.
     """
 
     state: str = "in preparation"
@@ -39,6 +40,7 @@ class Life:
     notice: tuple[str, ...] = ()
     changes: tuple[Block, ...] = ()
     answers: tuple[tuple[int, str], ...] = ()
+    remarks: tuple[tuple[str, str], ...] = ()
 
     def line(self, role: str) -> SignOffLine | None:
         """The sign-off line of a role, if there is one."""

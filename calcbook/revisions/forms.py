@@ -8,6 +8,7 @@ from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 
+from calcbook.calcfile.empty import is_empty
 from calcbook.chain.outcome import Result, Solved
 from calcbook.chain.types import Group, RunnerAssumption
 from calcbook.documents import Description, Fields, Key, Node, read_file, read_mapping
@@ -17,12 +18,19 @@ from calcbook.formulas.names import written_name
 from calcbook.quantities import QuantityFault, read_quantity
 from calcbook.record.digest import digest_of
 from calcbook.record.numbers import in_report_unit, percent
-from calcbook.record.sections.review import QUESTIONS
-from calcbook.revisions.signoffs import Acknowledged, Answer, HandValue, HandValues, quoted, yaml_lines
+from calcbook.record.sections.review import questions_for_a_person
+from calcbook.revisions.signoffs import (
+    ACKNOWLEDGED,
+    Acknowledged,
+    Answer,
+    HandValue,
+    HandValues,
+    quoted,
+    yaml_lines,
+)
 
 REVIEW = "review of every line"
 WAYS = (REVIEW, "alternate calculation", "comparison with a like calculation")
-ACKNOWLEDGED = "acknowledged"
 FEWEST_WORDS = 3  # beside ticks and figures: fewer make no sentence that another engineer could follow
 FEWEST_FIGURES = 3  # of digits in a figure that stands without its unit; a bare 2 is printed in every record
 TICKS = frozenset(
@@ -147,17 +155,17 @@ def form_path(calc_path: Path, role: str, blind: bool = False) -> Path:
     return calc_path.with_name(f"{calc_path.stem}.{role}{'.blind' if blind else ''}.form.yaml")
 
 
-def human_questions() -> tuple[tuple[str, str], ...]:
+def human_questions(solved: Solved) -> tuple[tuple[str, str], ...]:
     """Number and words of the questions that only a person can answer."""
-    return tuple((str(place), words) for place, (words, answer) in enumerate(QUESTIONS, 1) if answer is None)
+    return tuple((str(place), words) for place, words in questions_for_a_person(solved).items())
 
 
 def runner_assumptions(solved: Solved) -> tuple[RunnerAssumption, ...]:
-    """What the runner decided in every case, each id once."""
-    found: dict[str, RunnerAssumption] = {}
+    """What the runner decided, each sentence once: a case in which it decided otherwise has its own under the same id."""
+    found: dict[tuple[str, str], RunnerAssumption] = {}
     for case in solved.cases:
         for item in case.assumptions:
-            found.setdefault(item.id, item)
+            found.setdefault((item.id, item.text), item)
     return tuple(found.values())
 
 
@@ -181,13 +189,14 @@ def form_text(solved: Solved, role: str, person: str) -> str:
         "",
         "questions:",
     ]
-    for number, question in human_questions():
+    for number, question in human_questions(solved):
         lines += [f"  - number: {quoted(number)}", f"    question: {quoted(question)}", '    answer: ""']
     assumptions = runner_assumptions(solved)
     if assumptions:
         lines += [
             "",
-            "# What the runner decided by itself. Write `acknowledged`, or a sentence of your own.",
+            "# What the runner decided by itself, in any case. Write `acknowledged`, or a sentence of your own,",
+            "# which the record shows.",
             "assumptions:",
         ]
     for item in assumptions:
@@ -254,7 +263,7 @@ def read_form(path: Path, solved: Solved, role: str, person: str, record: str) -
     _check_identity(fields, solved, role, person, collector)
     collector.stop_if_any()
     way, checked_with = _way(fields, collector)
-    answers = _answers(fields, citable(solved, record), collector)
+    answers = _answers(fields, human_questions(solved), citable(solved, record), collector)
     acknowledged = _acknowledged(fields, runner_assumptions(solved), collector)
     collector.stop_if_any()
     return FilledForm(way, checked_with, answers, acknowledged)
@@ -301,7 +310,7 @@ def _way(fields: Fields, collector: Collector) -> tuple[str, str]:
             found=shown(way),
             expected=" | ".join(WAYS),
         )
-    elif way != REVIEW and not words_of(other):
+    elif way != REVIEW and (is_empty(other) or not words_of(other)):
         collector.add(
             "answer-empty",
             fields.place_of("checked with"),
@@ -317,10 +326,12 @@ def _items(fields: Fields, key: str, description: Description, collector: Collec
     return [read_mapping(item, description, collector, item.place) for item in items]
 
 
-def _answers(fields: Fields, known: Citable, collector: Collector) -> tuple[Answer, ...]:
+def _answers(
+    fields: Fields, questions: Iterable[tuple[str, str]], known: Citable, collector: Collector
+) -> tuple[Answer, ...]:
     found = {item.text("number"): item for item in _items(fields, "questions", QUESTION, collector)}
     answers = []
-    for number, question in human_questions():
+    for number, question in questions:
         item = found.get(number)
         if item is None:
             collector.add(
@@ -348,10 +359,11 @@ def _answers(fields: Fields, known: Citable, collector: Collector) -> tuple[Answ
 def _acknowledged(
     fields: Fields, assumptions: Iterable[RunnerAssumption], collector: Collector
 ) -> tuple[Acknowledged, ...]:
-    found = {item.text("id"): item for item in _items(fields, "assumptions", ASSUMPTION, collector)}
+    items = _items(fields, "assumptions", ASSUMPTION, collector)
+    found = {(item.text("id"), item.text("text")): item for item in items}
     result = []
     for assumption in assumptions:
-        item = found.get(assumption.id)
+        item = found.get((assumption.id, assumption.text))
         words = item.text("acknowledged") if item is not None else ""
         if words.casefold() != ACKNOWLEDGED and len(own_words(words)) < FEWEST_WORDS:
             place = item.place_of("acknowledged") if item is not None else fields.place_of("assumptions")

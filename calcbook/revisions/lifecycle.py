@@ -17,6 +17,7 @@ from calcbook.interface import NotConverged
 from calcbook.record.blocks import Block, Paragraph
 from calcbook.record.life import Life, SignOffLine
 from calcbook.revisions.signoffs import (
+    ACKNOWLEDGED,
     PARTS,
     PREPARED,
     Content,
@@ -303,6 +304,7 @@ def life_from(lifecycle: Lifecycle, settings: Settings, changes: tuple[Block, ..
         _notice(lifecycle),
         changes,
         _answers(lifecycle, settings),
+        _remarks(lifecycle, settings),
     )
 
 
@@ -314,6 +316,17 @@ def _answers(lifecycle: Lifecycle, settings: Settings) -> tuple[tuple[int, str],
         if item.validity == VALID and (entry := item.signoff) is not None
         for answer in entry.answers
         if answer.number.isdecimal()
+    )
+
+
+def _remarks(lifecycle: Lifecycle, settings: Settings) -> tuple[tuple[str, str], ...]:
+    """The words of valid sign-offs to what the runner decided, beyond that it is acknowledged."""
+    return tuple(
+        (item.id, f"{printed_name(settings, entry.person)}: {item.words}")
+        for judged in lifecycle.signoffs
+        if judged.validity == VALID and (entry := judged.signoff) is not None
+        for item in entry.acknowledged
+        if item.words.casefold() != ACKNOWLEDGED
     )
 
 

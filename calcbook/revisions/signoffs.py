@@ -186,6 +186,10 @@ class Answer(NamedTuple):
     answer: str
 
 
+# The word of one who accepts what the runner decided without a remark.
+ACKNOWLEDGED = "acknowledged"
+
+
 class Acknowledged(NamedTuple):
     """An assumption that the runner made, with the checker's acknowledgement."""
 

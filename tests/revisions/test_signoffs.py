@@ -91,9 +91,11 @@ def test_a_checker_gets_a_form_and_his_filled_form_becomes_the_sign_off(path: Pa
     entry = read_signoffs(signoffs_path(path)).signoffs[1]
     assert (entry.role, entry.person, entry.name, entry.date) == ("checked", "mr", "M. R.", "2026-09-03")
     assert entry.way == "review of every line"
-    assert [answer.answer for answer in entry.answers] == [ANSWER] * len(forms.human_questions())
-    assert [item.id for item in entry.acknowledged] == [
-        item.id for item in forms.runner_assumptions(work_of(path).solved)
+    assert [answer.answer for answer in entry.answers] == [ANSWER] * len(
+        forms.human_questions(work_of(path).solved)
+    )
+    assert [(item.id, item.text) for item in entry.acknowledged] == [
+        (item.id, item.text) for item in forms.runner_assumptions(work_of(path).solved)
     ]
 
 
@@ -119,11 +121,51 @@ def test_the_form_asks_every_question_for_a_person_and_every_assumption_of_the_r
     text = forms.form_text(solved_work.solved, "checked", "mr")
     root = read_text(text, "form").root
     assert isinstance(root, Mapping)
-    for number, question in forms.human_questions():
+    for number, question in forms.human_questions(solved_work.solved):
         assert f"number: {quoted(number)}\n    question: {quoted(question)}" in text
     for item in forms.runner_assumptions(solved_work.solved):
         assert f"id: {quoted(item.id)}\n    text: {quoted(item.text)}" in text
-    assert len(forms.human_questions()) >= 10
+    assert len(forms.human_questions(solved_work.solved)) >= 10
+
+
+def test_what_the_runner_decided_otherwise_in_a_case_is_acknowledged_as_well(path: Path) -> None:
+    text = path.read_text(encoding="utf-8")
+    assert "m_hot" in text and "cases:" not in text
+    # A twentieth of the flow: another method than in the base case, under the same id.
+    slow = "cases:\n  winter:\n    m_hot: {value: 0.8 kg/s, source: heat balance sheet 14}\n"
+    path.write_text(text + slow, encoding="utf-8")
+    solved = work_of(path).solved
+    methods = [
+        item.text for item in forms.runner_assumptions(solved) if item.id == "tube-side film/method/service"
+    ]
+    assert len(methods) == 2 and len(set(methods)) == 2
+    form = forms.form_text(solved, "checked", "mr")
+    assert all(quoted(text) in form for text in methods)
+
+
+def test_a_criterion_that_is_not_met_is_a_question_for_the_checker(path: Path) -> None:
+    before = dict(forms.human_questions(work_of(path).solved))
+    text = path.read_text(encoding="utf-8")
+    assert text.count("U_service >= 1000 ") == 1
+    path.write_text(text.replace("U_service >= 1000 ", "U_service >= 2000 "), encoding="utf-8")
+    asked = dict(forms.human_questions(work_of(path).solved))
+    (number,) = set(asked) - set(before)
+    assert asked[number].startswith("Not met: criterion 1 in case base.")
+    sign_prepared(path)
+    form = sign(work_of(path), "checked", "mr", day("2026-09-03")).path
+    fill(form)
+    filled = form.read_text(encoding="utf-8")
+    sentence = "I do not agree: the film may be far thicker than this."
+    assert filled.count('acknowledged: "acknowledged"') > 1
+    form.write_text(
+        filled.replace('acknowledged: "acknowledged"', f"acknowledged: {quoted(sentence)}", 1),
+        encoding="utf-8",
+    )
+    assert sign(work_of(path), "checked", "mr", day("2026-09-03")).done == signing.SIGNED
+    record = (path.parent.parent / "output" / "WC-101" / "record.md").read_text(encoding="utf-8")
+    row = next(line for line in record.split("\n") if line.startswith(f"| {number} | Are the acceptance"))
+    assert "not met: criterion 1 in case base" in row and f"M. R.: {ANSWER}" in row
+    assert record.count(f"M. R.: {sentence}") == 1
 
 
 # --- people -----------------------------------------------------------------------------------------
@@ -329,7 +371,7 @@ def test_a_figure_counts_as_it_is_printed_with_or_without_groups(known: forms.Ci
 def test_every_fault_of_a_form_is_told_at_once_with_its_line(path: Path) -> None:
     sign_prepared(path)
     form = sign(work_of(path), "checked", "mr", day("2026-09-03")).path
-    questions = len(forms.human_questions())
+    questions = len(forms.human_questions(work_of(path).solved))
     assumptions = len(forms.runner_assumptions(work_of(path).solved))
     with pytest.raises(Faults) as caught:
         sign(work_of(path), "checked", "mr", day("2026-09-03"))

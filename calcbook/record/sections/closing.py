@@ -99,6 +99,17 @@ def sign_off(page: Page) -> list[Block]:
         Heading(2, "16. Sign-off"),
         Paragraph(words),
         Table(("Role", "Sign-off", "Name", "Date", "Way of checking", "Note"), rows),
+        *_remarks(page),
+    ]
+
+
+def _remarks(page: Page) -> list[Block]:
+    """What those who signed wrote to the runner's assumptions, where it is more than that they acknowledge them."""
+    if not page.life.remarks:
+        return []
+    return [
+        Paragraph("To what the runner decided (section 6), those who signed remark:"),
+        Table(("Id", "Remark"), page.life.remarks),
     ]
 
 

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable
 
 from calcbook.chain.analysis import is_found_later, keeps_what_is_found_later
+from calcbook.chain.outcome import Solved
 from calcbook.chain.outside import stands_in_the_open
 from calcbook.chain.types import CONDITIONS, SERVICE, Chain
 from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Quote, Table
@@ -15,6 +16,7 @@ from calcbook.record.sections.survey import survey_cautions
 from calcbook.record.sections.validity import SMALLEST_RESIDUAL, residual, verdict
 
 FOR_CHECKER = "for the checker:"
+GROUND = "On what ground the result may be used as it is, for the checker:"
 EXCESS_LIMIT = 0.5  # common practice: above it the clean unit behaves as another machine
 Answer = Callable[[Page], str]
 
@@ -240,19 +242,33 @@ QUESTIONS: tuple[tuple[str, Answer | None], ...] = (
 )
 
 
+def questions_for_a_person(solved: Solved) -> dict[int, str]:
+    """Number and words of the questions that the figures do not answer; of criteria, where one is not met."""
+    found = {place: words for place, (words, answer) in enumerate(QUESTIONS, 1) if answer is None}
+    missed = [item for case in solved.cases for item in case.criteria if not item.met]
+    if missed:
+        names = ", ".join(f"{item.id} in case {case_name(item.case)}" for item in missed)
+        place = next(place for place, (_, answer) in enumerate(QUESTIONS, 1) if answer is _criteria)
+        found[place] = f"Not met: {names}. On what ground may the result be used as it is?"
+    return dict(sorted(found.items()))
+
+
 def review(page: Page) -> list[Block]:
     """Questions with the answers of the figures; those for a person stay open."""
     answered = dict(page.life.answers)
-    rows = tuple(
-        (str(place), question, answer(page) if answer is not None else answered.get(place, FOR_CHECKER))
-        for place, (question, answer) in enumerate(QUESTIONS, 1)
-    )
+    asked = questions_for_a_person(page.solved)
+    rows = []
+    for place, (question, answer) in enumerate(QUESTIONS, 1):
+        texts = [answer(page)] if answer is not None else []
+        if place in asked:
+            texts.append(answered.get(place, GROUND if texts else FOR_CHECKER))
+        rows.append((str(place), question, " ".join(texts)))
     people = sum(answer is None for _, answer in QUESTIONS)
     words = (
         f"{len(QUESTIONS) - people} questions are answered by the figures of this record; {people} are for"
         " the checker, who answers each in words that cite a step, a given or a figure."
     )
-    return [Heading(2, "13. Review"), Paragraph(words), Table(("No", "Question", "Answer"), rows)]
+    return [Heading(2, "13. Review"), Paragraph(words), Table(("No", "Question", "Answer"), tuple(rows))]
 
 
 # --- cautions ---------------------------------------------------------------------------------------
