@@ -133,6 +133,7 @@ CODES: dict[str, str] = {
     "step-not-possible": "a figure of the chain that its quantity cannot have",
     "limit-stops": "a limit outside which no number is given",
     "accept-unknown": "an accepted check, condition or case that does not exist",
+    "flow-state-idle": "a state of measurement beside a flow that is no volume flow",
     "accept-twice": "two acceptances of one check that act in the same place",
     "accept-direction": "the bound of an accepted check stands on the side where the figure is within",
     "sweep-givens": "a sweep varies one or two givens",

@@ -276,6 +276,13 @@ class _Builder:
             for symbol, given in changes.items():
                 self.scope.check_source(given.value, f"case {case}/{symbol}")
 
+        for number, criterion in enumerate(self.calculation.acceptance, 1):
+            if criterion.limit.is_literal and is_empty(criterion.source):
+                self.scope.open(
+                    f"criterion {number}/source",
+                    "source",
+                    f"The limit of criterion {number} ({criterion.text}) has no source.",
+                )
         stated = self.calculation.uncertainty
         for one in stated.correlations if stated is not None else ():
             if is_empty(one.source):
@@ -380,6 +387,12 @@ class _Builder:
         if calculation.revisions and not own:
             self.scope.open(
                 name, "revision", f"Revision {calculation.revision} does not stand in the revision history."
+            )
+        elif len(own) > 1:
+            self.scope.open(
+                name,
+                "revision",
+                f"Revision {calculation.revision} stands {len(own)} times in the revision history.",
             )
         elif own and own[-1].date != calculation.date:
             self.scope.open(

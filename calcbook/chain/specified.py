@@ -23,7 +23,7 @@ FIRST_U, FIRST_R = 500.0, 1e-4
 # What the resistance must be, from what it is and the U in service with it.
 RELATIONS = {"cleanliness": "R_f + 1/(C_f*U_c) - 1/U", "excess surface": "R_f + (1 + S_f)/U_c - 1/U"}
 SYMBOLS = {"cleanliness": "C_f", "excess surface": "S_f"}
-LIMITS = {"cleanliness": "0 < C_f <= 1", "excess surface": "S_f >= 0"}
+LIMITS = {"cleanliness": "0 < C_f < 1", "excess surface": "S_f > 0"}
 
 
 @dataclass(frozen=True)
@@ -75,7 +75,14 @@ class SpecifiedFouling:
         that = LIMITS[self.specified.kind]
         self._check_share()
         self._shares_keep_their_sum()
-        found = [self._stop("specified fouling", that, figures, "a deposit adds resistance, or none")]
+        found = [
+            self._stop(
+                "specified fouling",
+                that,
+                figures,
+                "a deposit adds resistance; a unit without one has no `fouling specified as`",
+            )
+        ]
         shares = {
             f"x_{number}": self.scope.value(value, "ratio", OWNER, f"share of {name}")
             for number, (name, value) in enumerate(self.specified.split.items(), 1)

@@ -406,6 +406,14 @@ def _stated(scope: Scope, flow: Value) -> str:
 def _mass_flow(scope: Scope, stream: Stream, state: StreamState) -> str:
     """The id of the mass flow, from a volume flow at its stated state or at the bulk state."""
     owner = f"stream {stream.name}"
+    if stream.flow is not None and stream.flow.stated_at and state.flow_kind != "volume flow":
+        scope.collector.add(
+            "flow-state-idle",
+            stream.flow.place,
+            f"`at:` states where a volume flow is measured, and the flow of {stream.name} is a {state.flow_kind}",
+            found=stream.flow.text,
+            expected="the flow without `at:`, or a volume flow (m^3/h)",
+        )
     if state.flow_kind == "mass flow":
         return state.flow
     if state.flow_kind == "speed":

@@ -34,7 +34,8 @@ from calcbook.seals import (
     read_seal,
 )
 
-OUTPUT, NOT_ISSUED = "output", "not issued"
+OUTPUT = "output"
+NOT_KNOWN = "not known here"
 _ISSUED_COPY = re.compile(r"([A-Za-z0-9][A-Za-z0-9_.-]{0,39})@([A-Za-z0-9][A-Za-z0-9.-]{0,9})")
 
 Data = Mapping[str, object]
@@ -50,8 +51,9 @@ class Side:
 
     ``document`` is the file as it stood, ``tree`` the same with table files and linked values written out in
     place. ``results`` is the results file that was recorded for this content, None where there is none.
-    ``software`` is what that results file was made with (empty without one). ``state`` says how the side
-    stands: `issued, final`, `issued, preliminary`, or `not issued`.
+    ``software`` is what that results file was made with (empty without one). ``state`` is the state of its lifecycle,
+    with the kind of its issue (`issued, final`); that of a revision of the repository is not known. An issued copy
+    ``is_frozen``.
     """
 
     label: str
@@ -64,7 +66,8 @@ class Side:
     file_name: str
     tree: Node
     digest: Digest
-    state: str
+    state: str = NOT_KNOWN
+    is_frozen: bool = False
     keeper: object = field(default=None, repr=False, compare=False)
 
     @property
@@ -74,7 +77,7 @@ class Side:
         The whole is empty where it is not that of the recorded parts.
         """
         found = (self.results or {}).get("digest")
-        if self.state == NOT_ISSUED or not isinstance(found, Mapping):
+        if not self.is_frozen or not isinstance(found, Mapping):
             return self.digest
         parts = [str(found.get(part, "")) for part in ("meaning", "cards", "results")]
         same = parts == [self.digest.meaning, self.digest.cards, self.digest.results]
@@ -111,7 +114,8 @@ def load_side(text: str, folder: Path, output: Path) -> Side:
     if issued is not None and not (folder / text).exists():
         return load_issued(issued[1], issued[2], output)
     path = folder / text
-    return _with_recorded(_solved_side(path, Path(text).as_posix(), NOT_ISSUED), output)
+    side = _with_recorded(_solved_side(path, Path(text).as_posix()), output)
+    return replace(side, state=_state_of(path, side.solved, output))
 
 
 def side_of(solved: Solved, path: Path, output: Path) -> Side:
@@ -119,7 +123,15 @@ def side_of(solved: Solved, path: Path, output: Path) -> Side:
 
     Raises ``Faults`` where its recorded results cannot be read.
     """
-    return _with_recorded(_side(solved, path, path.name, NOT_ISSUED), output)
+    return _with_recorded(_side(solved, path, path.name), output)
+
+
+def _state_of(path: Path, solved: Solved, output: Path) -> str:
+    from calcbook.revisions.lifecycle import lifecycle_of
+
+    life = lifecycle_of(path, solved, output)
+    kind = f", {life.current.kind}" if life.is_current and life.current is not None else ""
+    return f"{life.state}{kind}" if life.state == ISSUED else life.state
 
 
 def _with_recorded(side: Side, output: Path) -> Side:
@@ -152,7 +164,9 @@ def load_issued(number: str, revision: str, output: Path) -> Side:
     side = _SEALED.get(key)
     if side is None:
         side = _with_results(
-            _solved_side(folder / CALCULATION, called, f"issued, {seal.kind}"),
+            replace(
+                _solved_side(folder / CALCULATION, called), state=f"{ISSUED}, {seal.kind}", is_frozen=True
+            ),
             _read_results(folder / RESULTS),
         )
         # What it takes from others is not under its seal.
@@ -216,7 +230,7 @@ def load_from_commit(folder: Path, revision: str, path: str) -> Side:
     target = keeper.path / commit.prefix() / inside
     target.mkdir(parents=True, exist_ok=True)
     _take_out(commit, inside, target, whole.name)
-    side = _solved_side(target / whole.name, called, NOT_ISSUED, keeper)
+    side = replace(_solved_side(target / whole.name, called), keeper=keeper)
     output = read_settings(target).output or OUTPUT
     recorded = commit.blob(f"{inside}/{output}/{side.calculation.number}/{RESULTS}")
     if recorded is None:
@@ -291,11 +305,11 @@ def _word(node: MappingNode, key: str) -> str:
 # --- reading ----------------------------------------------------------------------------------------
 
 
-def _solved_side(path: Path, called: str, state: str, keeper: object = None) -> Side:
-    return _side(solve_file(path, called, for_record=False), path, called, state, keeper)
+def _solved_side(path: Path, called: str) -> Side:
+    return _side(solve_file(path, called, for_record=False), path, called)
 
 
-def _side(solved: Solved, path: Path, called: str, state: str, keeper: object = None) -> Side:
+def _side(solved: Solved, path: Path, called: str) -> Side:
     document = read_file(path, called)
     calculation = solved.chain.calculation
     label = f"{calculation.number}, revision {calculation.revision}"
@@ -310,8 +324,6 @@ def _side(solved: Solved, path: Path, called: str, state: str, keeper: object = 
         called,
         _written_out(document.root, path.parent, calculation),
         digest_of(solved),
-        state,
-        keeper,
     )
 
 

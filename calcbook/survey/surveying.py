@@ -224,7 +224,9 @@ class _Survey:
             self.chain, self.survey, slopes(self.chain, columns, self.loss), columns, since_first
         )
         figures, told_parts = self.figures(found, parts, chosen)
-        anchored = found.data.anchored(found.data.values)
+        # The fit takes the growth among the rows that anchor zero from them: a resistance has it back.
+        curve = found.model.value(found.parameters, found.data.times)
+        resistances = found.data.anchored(found.data.values) + found.data.zero_means(curve)[found.data.cycles]
         unsure = self.row_uncertainty(found, parts, chosen)
         model = found.model
         return SurveyOutcome(
@@ -235,8 +237,8 @@ class _Survey:
             fitted=len(fitted),
             before_cleaning=int(np.count_nonzero(kept.cycles < 0)),
             not_anchored=int(np.count_nonzero((kept.cycles >= 0) & ~kept.anchored)),
-            negative=int(np.count_nonzero(anchored < 0.0)),
-            not_resolved=int(np.count_nonzero(anchored < 2.0 * unsure)),
+            negative=int(np.count_nonzero(resistances < 0.0)),
+            not_resolved=int(np.count_nonzero(resistances < 2.0 * unsure)),
             out_of_order=rows.out_of_order,
             not_compared=sieve.not_compared,
             first=moment_text(float(kept.times[0]), self.survey),
@@ -257,7 +259,7 @@ class _Survey:
             period=float(found.data.times.max()),
             after=self.survey.proposal.after.value,
             percentile=self.survey.proposal.percentile.value,
-            plot=self.plot(kept, fitted, found, anchored),
+            plot=self.plot(kept, fitted, resistances, curve),
         )
 
     def gaps(self, kept: _Kept) -> tuple[Gap, ...]:
@@ -363,18 +365,15 @@ class _Survey:
             )
         return tuple(rows)
 
-    def plot(self, kept: _Kept, fitted: Array, found: Fit, anchored: Array) -> tuple[PlotColumn, ...]:
+    def plot(self, kept: _Kept, fitted: Array, resistances: Array, curve: Array) -> tuple[PlotColumn, ...]:
         """The fitted rows in columns of equal time: their mean, and the mean of the fit at the same rows."""
         times = kept.times[fitted]
         first, last = float(times[0]), float(times[-1])
         width = max(last - first, 1.0) / PLOT_COLUMNS
         column = np.minimum(((times - first) / width).astype(int), PLOT_COLUMNS - 1)
-        curve = found.model.value(found.parameters, found.data.times)
-        shift = found.data.zero_means(curve)
-        shown = anchored + shift[found.data.cycles]
         counts = np.bincount(column, minlength=PLOT_COLUMNS)
         with np.errstate(invalid="ignore"):
-            means = np.bincount(column, weights=shown, minlength=PLOT_COLUMNS) / counts
+            means = np.bincount(column, weights=resistances, minlength=PLOT_COLUMNS) / counts
             fits = np.bincount(column, weights=curve, minlength=PLOT_COLUMNS) / counts
         cleaned = ((self.starts - first) / width).astype(int)
         return tuple(

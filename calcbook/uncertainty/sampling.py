@@ -92,8 +92,9 @@ def tolerance_of(standard: float, digits: int) -> float:
 def draw(figures: Sequence[Drawn], correlations: Correlations, number: int, size: int) -> dict[str, Array]:
     """The values of every figure in one block.
 
-    Figures that are correlated are drawn from the joint normal law of their standard uncertainties
-    (JCGM 101:2008, 6.4.8), whatever law they have alone.
+    Figures that are correlated keep the law that each has alone; their normal scores are drawn from the joint normal
+    law with the stated coefficients, which for normal figures is that of JCGM 101:2008, 6.4.8 (for others the guide
+    has no law that a coefficient alone would give).
     """
     joint = {name for pair, r in correlations.items() if r != 0.0 for name in pair}
     values = {
@@ -103,7 +104,7 @@ def draw(figures: Sequence[Drawn], correlations: Correlations, number: int, size
     }
     together = [figure for figure in figures if figure.id in joint]
     if together:
-        from scipy.special import ndtri
+        from scipy.special import ndtr, ndtri
 
         root = square_root(correlation_matrix([figure.id for figure in together], correlations))
         alone = np.stack([ndtri(shares(figure.id, number, size)) for figure in together])
@@ -111,7 +112,7 @@ def draw(figures: Sequence[Drawn], correlations: Correlations, number: int, size
             mixed = np.zeros(size)
             for column in range(len(together)):
                 mixed = mixed + root[row, column] * alone[column]
-            values[figure.id] = figure.distribution.mean + figure.distribution.standard * mixed
+            values[figure.id] = figure.distribution.at(ndtr(mixed))
     return values
 
 

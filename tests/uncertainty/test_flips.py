@@ -411,7 +411,7 @@ def check_flip(chain: Chain, flip: Flip) -> None:
 @pytest.fixture
 def without_other_methods(monkeypatch: pytest.MonkeyPatch) -> None:
     """The cross-check and the sensitivities decide no verdict, and take most of the time."""
-    monkeypatch.setattr(analysis._Analysis, "_cross", lambda *_: ())
+    monkeypatch.setattr(analysis, "cross_check", lambda *_: {})
     monkeypatch.setattr(analysis._Analysis, "_sensitivity", lambda *_: ())
 
 

@@ -229,6 +229,23 @@ def test_correlated_figures_have_their_coefficient() -> None:
     assert values["a"].std() == pytest.approx(0.5, abs=0.0025)
 
 
+@pytest.mark.parametrize("r", [-0.9, 0.3, 0.6, 1.0])
+def test_correlated_figures_keep_their_own_law(r: float) -> None:
+    """Rectangular figures from normal scores with r have (6/pi)·asin(r/2) (Pearson 1907; from memory)."""
+    figures = [Drawn("a", Rectangular(2.0, 0.5)), Drawn("b", Rectangular(-1.0, 3.0))]
+    values = draw(figures, {frozenset("ab"): r}, 0, 200_000)
+    for figure in figures:
+        law = figure.distribution
+        shares_of = np.sort((values[figure.id] - law.mean) / law.half_width / 2.0 + 0.5)
+        assert shares_of[0] >= 0.0 and shares_of[-1] <= 1.0
+        even = (np.arange(200_000) + 0.5) / 200_000
+        assert np.abs(shares_of - even).max() < 1.95 / math.sqrt(200_000)
+    found = np.corrcoef(values["a"], values["b"])[0, 1]
+    assert found == pytest.approx(6.0 / math.pi * math.asin(r / 2.0), abs=0.007)  # three of 1/sqrt(N)
+    # Largest difference between r and that of the figures, as the record tells.
+    assert abs(found - r) < 0.02 + 0.007
+
+
 def test_matrices_that_cannot_be() -> None:
     assert is_possible(np.array([[1.0, 1.0], [1.0, 1.0]]))
     assert not is_possible(np.array([[1.0, 0.9, -0.9], [0.9, 1.0, 0.9], [-0.9, 0.9, 1.0]]))
