@@ -140,7 +140,11 @@ def source_of(solved: Solved) -> Source:
 
     results = {name: (result.value, result.kind.unit) for name, result in solved.base.results.items()}
     return Source(
-        solved.chain.calculation.revision, digest_of(solved).results, results, len(solved.open_items)
+        solved.chain.calculation.revision,
+        digest_of(solved).results,
+        results,
+        len(solved.open_items),
+        solved.chain.surfaces[solved.chain.basis].name,
     )
 
 

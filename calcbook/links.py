@@ -13,23 +13,24 @@ from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 from pathlib import Path
 
-from calcbook.calcfile.links import CURRENT, Link, LinkText, number_of
+from calcbook.calcfile.links import CURRENT, Link, LinkText, number_of, surface_of
 from calcbook.documents import Mapping as MappingNode
-from calcbook.documents import read_file, read_text
+from calcbook.documents import Scalar, read_file, read_text
 from calcbook.faults import Collector, Fault, Faults, nearest_names
-from calcbook.seals import FINAL, ISSUED, RESULTS, check_seal, issued_altered, read_seal
+from calcbook.seals import CALCULATION, FINAL, ISSUED, RESULTS, check_seal, issued_altered, read_seal
 
 DIGITS = 10
 
 
 @dataclass(frozen=True, slots=True)
 class Source:
-    """What a solved source gives: its revision, digest, results by name (value, unit), and its open items."""
+    """What a solved source gives: revision, digest, results by name (value, unit), open items, and the surface of U."""
 
     revision: str
     digest: str
     results: Mapping[str, tuple[float, str]]
     open_items: int
+    basis: str
 
 
 Solve = Callable[[Path], Source]
@@ -73,7 +74,15 @@ class Links:
         state = "void" if _is_void(file) else "not pinned to an issued revision"
         if source.open_items and state != "void":
             state = f"preliminary, {source.open_items} open item(s), and not pinned"
-        return Link(text.calculation, text.result, source.revision, source.digest, figure(value, unit), state)
+        return Link(
+            text.calculation,
+            text.result,
+            source.revision,
+            source.digest,
+            figure(value, unit),
+            state,
+            surface_of(text.result, source.basis),
+        )
 
     def _pinned(self, text: LinkText, file: Path | None) -> Link:
         folder = self.output / text.calculation / ISSUED / text.revision
@@ -105,7 +114,15 @@ class Links:
         elif newer := self._superseding(text.calculation, text.revision):
             state = f"source moved: revision {newer} supersedes {text.revision}"
         digest = seal.digest.get("results", "")
-        return Link(text.calculation, text.result, text.revision, digest, figure(value, unit), state)
+        return Link(
+            text.calculation,
+            text.result,
+            text.revision,
+            digest,
+            figure(value, unit),
+            state,
+            surface_of(text.result, _basis_of(folder / CALCULATION)),
+        )
 
     def _result(self, text: LinkText, results: Mapping[str, tuple[float, str]]) -> tuple[float, str]:
         if text.result not in results:
@@ -165,6 +182,17 @@ def figure(value: float, unit: str) -> str:
     """A result as a given writes it: ten digits and the SI unit."""
     number = f"{value:.{DIGITS}g}"
     return number if unit == "1" else f"{number} {unit}"
+
+
+def _basis_of(file: Path) -> str:
+    """The surface that U stands on by a calculation file; empty where that cannot be read."""
+    try:
+        root = read_file(file).root
+    except Faults:
+        return ""
+    report = root.get("report") if isinstance(root, MappingNode) else None
+    basis = report.get("U on") if isinstance(report, MappingNode) else None
+    return basis.text if isinstance(basis, Scalar) else ""
 
 
 def _is_void(file: Path) -> bool:

@@ -25,7 +25,8 @@ class LinkText:
 class Link:
     """A link with what the source gave: revision, digest, the figure as text, and how the source stands.
 
-    ``state`` is current, or says why not: not pinned, source moved, source preliminary, source void.
+    ``state`` is current, or says why not: not pinned, source moved, source preliminary, source void. ``on`` is the
+    surface of the source that a resistance or an overall coefficient counts on; empty for other results.
     """
 
     calculation: str
@@ -34,6 +35,15 @@ class Link:
     digest: str
     text: str
     state: str
+    on: str = ""
+
+
+def surface_of(result: str, basis: str) -> str:
+    """The surface that a result counts on, by its name: ``basis`` for most; empty where it counts on none or its own."""
+    name, _, surface = result.partition(" on ")
+    if name in ("U_service", "U_clean"):
+        return surface or basis
+    return basis if result.startswith(("allowance_", "R ")) else ""
 
 
 def number_of(root: Node) -> str:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import replace
 
 from calcbook.calcfile import Calculation
@@ -122,6 +122,7 @@ class _Builder:
             else None
         )
         self._check_temperatures(elements)
+        self._linked_surfaces(terms, elements, shape)
         self._assumptions_of_engineer()
         check_services(calculation, self.collector)
         if self.collector or basis is None or elements is None:
@@ -139,6 +140,24 @@ class _Builder:
         else:
             self.checks += self._heat_balance(elements, results, laid_out.streams)
         return self._finished(elements, shape, basis, circuit, results) if not self.collector else None
+
+    def _linked_surfaces(
+        self, terms: Sequence[Term], elements: Sequence[Element] | None, shape: Shape
+    ) -> None:
+        """That a resistance taken from another calculation acts on the surface that it counts on there."""
+        surfaces = {element.name: shape.surfaces[element.surface].name for element in elements or ()}
+        for term in terms:
+            value = term.values.get("resistance")
+            given = self.calculation.givens.get(value.symbol) if value is not None else None
+            link = given.link if given is not None else None
+            here = surfaces.get(term.name, "")
+            if link is not None and link.on and here and link.on != here:
+                self.scope.open(
+                    f"{term.name}/linked surface",
+                    "link",
+                    f"{term.name} takes {link.result} from {link.calculation}, which counts on the surface"
+                    f" {link.on} there, and acts on {here}: the same deposit has another resistance on it.",
+                )
 
     def _rated(
         self,

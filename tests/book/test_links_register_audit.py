@@ -54,6 +54,31 @@ def test_a_given_takes_the_figure_of_its_source(book: Path) -> None:
     assert given.source.startswith("calculation S-1 revision B, T inside surface service, digest ")
 
 
+@pytest.mark.parametrize(("revision", "told"), [("", "unpinned"), (", revision: A", "issued")])
+def test_an_allowance_on_another_surface_is_an_open_item(revision: str, told: str, tmp_path: Path) -> None:
+    """A resistance of 1 m2 of the outside is d_i/d_o times as much on 1 m2 of the inside: common practice."""
+    calcs, output = tmp_path / "calcs", tmp_path / "output"
+    shutil.copytree(ROOT / "calcs", calcs)
+    shutil.copytree(ROOT / "output" / "WC-111" / "issued", output / "WC-111" / "issued")
+    path = calcs / "wc-112.yaml"
+    text = path.read_text(encoding="utf-8")
+    pinned = "result: allowance_proposed, revision: A"
+    placed = "resistance: R_fo, on: outside"
+    assert text.count(pinned) == text.count(placed) == 1
+    text = text.replace(pinned, f"result: allowance_proposed{revision}")
+    name = "shell-side deposit/linked surface"
+    path.write_text(text, encoding="utf-8")
+    assert name not in {item.id for item in solve_file(path).open_items}
+    lines = text.split("\n")
+    deposit = next(line for line in lines if placed in line)
+    lines.remove(deposit)
+    film = next(place for place, line in enumerate(lines) if "name: tube wall" in line)
+    lines.insert(film, deposit.replace("on: outside", "on: inside"))
+    path.write_text("\n".join(lines), encoding="utf-8")
+    items = {item.id: item.text for item in solve_file(path).open_items}
+    assert "counts on the surface outside there, and acts on inside" in items[name], told
+
+
 def test_a_source_that_is_not_pinned_or_preliminary_is_an_open_item(book: Path) -> None:
     items = {item.id: item.text for item in solve_file(book / "fed.yaml").open_items}
     assert "preliminary, 1 open item(s), and not pinned" in items["given/T_hot/link"]
