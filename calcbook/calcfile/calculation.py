@@ -152,12 +152,32 @@ class Stream:
 
 @dataclass(frozen=True, slots=True)
 class DutySide:
-    """One stream of the duty, from its inlet to its outlet; a saturated stream has neither."""
+    """One stream of the duty, from its inlet to its outlet; a saturated stream has neither.
+
+    One end may be left out beside the other: it is found.
+    """
 
     stream: str
     inlet: Value | None
     outlet: Value | None
     place: Place
+
+    @property
+    def has_ends(self) -> bool:
+        """Whether its temperature changes along the unit."""
+        return self.inlet is not None or self.outlet is not None
+
+    @property
+    def ends(self) -> tuple[tuple[str, Value | None], ...]:
+        """Inlet and outlet, each by its name."""
+        return ("inlet", self.inlet), ("outlet", self.outlet)
+
+    @property
+    def open_end(self) -> str:
+        """The end whose temperature is to be found; empty where both are stated, or neither."""
+        if not self.has_ends or (self.inlet is not None and self.outlet is not None):
+            return ""
+        return "inlet" if self.inlet is None else "outlet"
 
 
 @dataclass(frozen=True, slots=True)

@@ -184,7 +184,12 @@ DUTY_SIDE = Description(
     "one stream from its inlet to its outlet",
     (
         Key("stream", "name of the stream", "name", required=True),
-        Key("inlet", "inlet temperature; none for a saturated stream", "node", of=SOURCED),
+        Key(
+            "inlet",
+            "inlet temperature; none for a saturated stream; left out beside an outlet, it is found by heat balance",
+            "node",
+            of=SOURCED,
+        ),
         Key("outlet", "outlet temperature; left out, it is found", "node", of=SOURCED),
     ),
 )

@@ -57,9 +57,9 @@ def _count(reader: Reader, fields: Fields, name: str) -> int:
 
 
 def _check(reader: Reader, duty: Duty, fields: Fields) -> None:
-    """What the text alone shows: streams that exist, counts that fit the arrangement, an inlet for an outlet."""
+    """What the text alone shows: streams that exist, counts that fit the arrangement, no two inlets open."""
     known = [key.text for key, _ in reader.entries("streams")]
-    for name, side in duty.sides.items():
+    for side in duty.sides.values():
         if side.stream and side.stream not in known:
             reader.collector.add(
                 "stream-unknown",
@@ -69,8 +69,15 @@ def _check(reader: Reader, duty: Duty, fields: Fields) -> None:
                 expected=", ".join(known) or "a stream",
                 nearest=nearest_names(side.stream, known),
             )
-        if side.inlet is None and side.outlet is not None:
-            _refuse(reader, side.place, f"the {name} side has an outlet and no inlet", "inlet: … beside it")
+    ends = {side.open_end for side in duty.sides.values()}
+    if "inlet" in ends and ends != {"inlet", ""}:
+        place = next(side.place for side in duty.sides.values() if side.open_end == "inlet")
+        _refuse(
+            reader,
+            place,
+            "an inlet is open, and an end of the other side too",
+            "inlet and outlet of the other side",
+        )
     if duty.hot.stream and duty.hot.stream == duty.cold.stream:
         _refuse(reader, duty.cold.place, "one stream stands on both sides", "two streams")
     if "shells" in fields and duty.arrangement and duty.arrangement != "shell and tube":

@@ -686,17 +686,17 @@ class Reader:
         return Value("", empty.place, is_broken=True) if empty else self.value(fields.node("temperature"))
 
     def check_stream_temperatures(self, streams: Mapping[str, Stream], duty: Duty | None) -> None:
-        """A stream without a temperature takes the mean of its ends: it must stand in the duty with an inlet."""
+        """A stream without a temperature takes the mean of its ends: it must stand in the duty with an end."""
         for name, stream in streams.items():
             if stream.temperature is not None:
                 continue
             sides = duty.sides.values() if duty is not None else ()
-            if not any(side.stream == name and side.inlet is not None for side in sides):
+            if not any(side.stream == name and side.has_ends for side in sides):
                 self.collector.add(
                     "key-missing",
                     stream.place,
                     f"the stream `{shown(name)}` has no temperature",
-                    expected="temperature: …, or its inlet in the duty",
+                    expected="temperature: …, or an end of it in the duty",
                 )
 
     def non_condensable(self, node: Node | None) -> Value | None:

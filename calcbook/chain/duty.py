@@ -12,7 +12,7 @@ from dataclasses import dataclass, field
 
 import numpy as np
 
-from calcbook.calcfile.calculation import Duty, DutySide, Term
+from calcbook.calcfile.calculation import Duty, DutySide, Term, Value
 from calcbook.chain.films import FilmScope
 from calcbook.chain.latent import (
     BECAUSE,
@@ -93,10 +93,9 @@ class DutyLayout:
         """The id of the mean of its ends for every stream of the duty that has ends."""
         means = {}
         for name, side in self.duty.sides.items():
-            if side.inlet is None:
+            if not side.has_ends:
                 continue
-            inlet = self.scope.value(side.inlet, "temperature", f"duty {name}", "inlet")
-            outlet = self._outlet(name, side)
+            inlet, outlet = (self._end(name, end, value) for end, value in side.ends)
             self.results |= {f"T {name} inlet": inlet, f"T {name} outlet": outlet}
             self.results[f"T {name} mean"] = means[side.stream] = self._step(
                 f"{name}/mean",
@@ -109,10 +108,10 @@ class DutyLayout:
             )
         return means
 
-    def _outlet(self, name: str, side: DutySide) -> str:
-        if side.outlet is not None:
-            return self.scope.value(side.outlet, "temperature", f"duty {name}", "outlet")
-        open_id = f"{OWNER}/{name}/outlet"
+    def _end(self, name: str, end: str, value: Value | None) -> str:
+        if value is not None:
+            return self.scope.value(value, "temperature", f"duty {name}", end)
+        open_id = f"{OWNER}/{name}/{end}"
         self.scope.dimensions[open_id] = vocabulary()["temperature"].dimension
         return open_id
 
@@ -126,12 +125,12 @@ class DutyLayout:
             return False
         for name, side in sides.items():
             state = self.states[name]
-            if side.inlet is None and not self._is_isothermal(name, side, state):
+            if not side.has_ends and not self._is_isothermal(name, side, state):
                 return False
-            if side.inlet is not None and state.is_saturated and state.pressure:
+            if side.has_ends and state.is_saturated and state.pressure:
                 self._fault(
                     side.place,
-                    f"the {name} stream `{shown(side.stream)}` is saturated and has an inlet temperature",
+                    f"the {name} stream `{shown(side.stream)}` is saturated and has a temperature at its end",
                     "no inlet and outlet: a saturated stream keeps its temperature",
                 )
                 return False
@@ -258,7 +257,8 @@ class DutyLayout:
 
     def _has_heat(self, name: str) -> bool:
         """Whether the heat of a side follows from its own flow and stated ends."""
-        return self.duty.sides[name].outlet is not None and f"C {name}" in self.results
+        side = self.duty.sides[name]
+        return side.has_ends and not side.open_end and f"C {name}" in self.results
 
     def _heat(self, name: str) -> str:
         sign = "T_hi - T_ho" if name == "hot" else "T_co - T_ci"
@@ -301,19 +301,21 @@ class DutyLayout:
             )
 
     def _from_heat(self, name: str) -> None:
-        """What the duty gives for a side: its outlet where that is open, its capacity where its flow is not stated."""
+        """What the duty gives for a side: the end that is open, or its capacity where its flow is not stated."""
         side = self.duty.sides[name]
         if name == self.isothermal:
             return
         known = f"C {name}" in self.results
-        if side.outlet is None and not known:
+        if side.open_end and not known:
             self._fault(
                 side.place,
-                f"neither the outlet nor the flow of the {name} stream is stated",
-                "outlet: … here, or flow: … on the stream",
+                f"neither the {side.open_end} nor the flow of the {name} stream is stated",
+                f"{side.open_end}: … here, or flow: … on the stream",
             )
-        elif side.outlet is None:
+        elif side.open_end == "outlet":
             self._found_outlet(name, self.results["duty"], SERVICE)
+        elif side.open_end:
+            self._found_inlet(name)
         elif not known:
             ends = "T_hi - T_ho" if name == "hot" else "T_co - T_ci"
             self.results[f"C {name}"] = self._step(
@@ -352,6 +354,26 @@ class DutyLayout:
                 self.results[f"T {other} inlet"],
             )
         )
+
+    def _found_inlet(self, name: str) -> None:
+        """The step that gives an open inlet from the duty, and the open figure that agrees with it."""
+        sign = "+" if name == "hot" else "-"
+        outlet = self.results[f"T {name} outlet"]
+        found = self._step(
+            f"{name}/inlet found",
+            f"T_{name[0]}i",
+            f"inlet of {self.duty.sides[name].stream}",
+            f"T_{name[0]}o {sign} Q/C_{name[0]}",
+            {
+                f"T_{name[0]}o": outlet,
+                "Q": self.results["duty"],
+                f"C_{name[0]}": self.results[f"C {name}"],
+            },
+            "found: its heat balance",
+            "temperature",
+        )
+        self.results[f"T {name} inlet found"] = self.results[f"T {name} inlet"]
+        self.open_figures.append(OpenFigure(self.results[f"T {name} inlet"], found, SERVICE, outlet, outlet))
 
     def _by_effectiveness(self) -> bool:
         """No stated end gives the duty: both streams need their flow and leave their outlet open."""
@@ -700,6 +722,8 @@ _RESULTS = (
     ("duty", "duty", "heat flow", "duty"),
     ("closure", "closure", "ratio", "closure error of the heat balances"),
     ("flow_needed", "flow needed", "mass flow", "flow of the saturated stream that its heat balance needs"),
+    ("T_hot_inlet", "T hot inlet found", "temperature", "inlet of the hot stream, found"),
+    ("T_cold_inlet", "T cold inlet found", "temperature", "inlet of the cold stream, found"),
     ("T_hot_outlet", "T hot outlet", "temperature", "outlet of the hot stream"),
     ("T_cold_outlet", "T cold outlet", "temperature", "outlet of the cold stream"),
     ("LMTD", "LMTD", "temperature difference", "logarithmic mean temperature difference"),

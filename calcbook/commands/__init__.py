@@ -12,7 +12,7 @@ import importlib
 
 import click
 
-from calcbook import __version__
+import calcbook
 
 INTERRUPTED = 130
 COMMANDS = (
@@ -56,7 +56,7 @@ class _Commands(click.Group):
 @click.group(
     cls=_Commands, context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100}
 )
-@click.version_option(__version__, message="calcbook %(version)s")
+@click.version_option(calcbook.__version__, message="calcbook %(version)s")
 def main() -> None:
     """Run controlled calculations of overall heat-transfer coefficients.
 

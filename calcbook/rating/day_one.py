@@ -12,6 +12,7 @@ from typing import NamedTuple
 
 import numpy as np
 
+from calcbook.calcfile.calculation import DutySide, Value
 from calcbook.chain.analysis import clean_surface_criteria
 from calcbook.chain.build import build
 from calcbook.chain.checks import evaluate_check
@@ -27,6 +28,7 @@ from calcbook.chain.solve import Solution, chosen, solve
 from calcbook.chain.types import CLEAN, SERVICE, Branch, Chain, Group
 from calcbook.chain.variants import with_figures
 from calcbook.faults import Collector
+from calcbook.quantities import read_any
 
 Array = np.ndarray
 # The flow is looked for down to this part of the stated one.
@@ -49,7 +51,7 @@ def day_one(solved: Solved) -> DayOne | None:
     """The clean unit at the duty's inlets; None where a flow is missing that it takes, or nothing fouls."""
     if not any(row.kind == "fouling" for row in solved.base.terms[SERVICE]):
         return None
-    chain = open_chain(solved.chain, "hot", "cold")
+    chain = open_chain(solved, "hot", "cold")
     if chain is None:
         return None
     inputs = chain.case_inputs("")
@@ -78,24 +80,40 @@ def day_one(solved: Solved) -> DayOne | None:
     )
 
 
-def open_chain(before: Chain, *sides: str) -> Chain | None:
-    """The calculation with the outlets of some sides open and the means of their ends; None where it has a fault."""
+def open_chain(solved: Solved, *sides: str) -> Chain | None:
+    """The calculation with the outlets of some sides open and the means of their ends; None where it has a fault.
+
+    An inlet that the file leaves open stays where it was found.
+    """
+    before = solved.chain
     calculation, duty = before.calculation, before.calculation.duty
     assert duty is not None
-    opened = {name: replace(duty.sides[name], outlet=None) for name in sides}
-    open_streams = {side.stream for side in opened.values() if side.inlet is not None}
+    opened = {name: _with_inlet(solved, name, side) for name, side in duty.sides.items()}
+    opened |= {name: replace(opened[name], outlet=None) for name in sides}
+    open_streams = {opened[name].stream for name in sides if opened[name].has_ends}
     streams = {
         name: replace(stream, temperature=None) if name in open_streams else stream
         for name, stream in calculation.streams.items()
     }
     changed = replace(
         calculation,
-        duty=replace(duty, hot=opened.get("hot", duty.hot), cold=opened.get("cold", duty.cold), parts=1),
+        duty=replace(duty, hot=opened["hot"], cold=opened["cold"], parts=1),
         streams=streams,
     )
     collector = Collector()
     chain = build(changed, before.library, collector, cross_check=False)
     return chain if chain is not None and not collector and chain.open_figures else None
+
+
+def _with_inlet(solved: Solved, name: str, side: DutySide) -> DutySide:
+    """A side with the inlet that was found for it, where the file states none."""
+    if side.open_end != "inlet":
+        return side
+    found = solved.base.solutions[SERVICE].number(solved.chain.results[f"T {name} inlet"])
+    text = f"{found!r} K"
+    return replace(
+        side, inlet=Value(text, side.place, quantity=read_any(text), source="found", has_source=True)
+    )
 
 
 def _solution(chain: Chain, inputs: Mapping[str, Array], condition: str) -> Solution | None:
@@ -118,9 +136,9 @@ def _turned_down(solved: Solved) -> tuple[UnitState | None, str, _Judged]:
     flow = chain.streams[duty.cold.stream].mass_flow
     if "C cold" not in table or not flow:
         return None, "the cold stream has no mass flow that could be turned down", NOTHING
-    if duty.hot.outlet is None and duty.hot.inlet is not None:
+    if duty.hot.open_end == "outlet":
         return None, "the outlet of the hot stream is not stated", NOTHING
-    opened = open_chain(chain, "cold")
+    opened = open_chain(solved, "cold")
     if opened is None or "duty" not in opened.results:
         return None, "the duty does not follow from the hot stream alone", NOTHING
     fixed = _stated_without_scale(solved, duty.cold.stream)

@@ -119,7 +119,7 @@ def load_side(text: str, folder: Path, output: Path) -> Side:
 
 
 def side_of(solved: Solved, path: Path, output: Path) -> Side:
-    """The side of a file that is solved already, as ``load_side`` gives it by the file's name in its folder.
+    """The side of a file that is solved already, as ``load_side`` gives it by the file's name, but without its state.
 
     Raises ``Faults`` where its recorded results cannot be read.
     """

@@ -546,9 +546,9 @@ def ends_of(chain: Chain, survey: Survey, collector: Collector) -> Ends | None:
         return None
     measured, missing = {}, False
     for name, side in duty.sides.items():
-        if side.inlet is None and side.outlet is None:
+        if not side.has_ends:
             continue
-        for end, value in (("inlet", side.inlet), ("outlet", side.outlet)):
+        for end, value in side.ends:
             if value is not None and value.symbol in survey.columns:
                 measured[f"{name} {end}"] = value.symbol
                 continue

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from pathlib import Path
 
 import ht
@@ -188,6 +189,41 @@ def test_both_ways_to_the_duty_agree(tmp_path: Path, arrangement: str) -> None:
     assert figure(answer, "area_service") == pytest.approx(figure(answer, "area_installed"), rel=1e-9)
     two = answer.base.solutions["service"].number(answer.chain.results["duty by effectiveness"])
     assert two == pytest.approx(figure(answer, "duty"), rel=1e-9)
+
+
+RATED_COOLER = Path(__file__).resolve().parents[2] / "calcs" / "wc-105.yaml"
+
+
+@pytest.mark.parametrize(
+    ("side", "ends", "given"),
+    [
+        ("hot", "hot:  {stream: hot,  inlet: T_hi, outlet: T_ho}", "T_hi"),
+        ("cold", "cold: {stream: cold, inlet: T_ci, outlet: T_co}", "T_ci"),
+    ],
+)
+def test_an_inlet_by_heat_balance(tmp_path: Path, side: str, ends: str, given: str) -> None:
+    """The inlet that closes the balance: with it stated, all is as it was found (closing to 1e-13 of the figures)."""
+    text = RATED_COOLER.read_text(encoding="utf-8")
+    assert text.count(ends) == 1
+    path = tmp_path / "trial.yaml"
+    path.write_text(text.replace(ends, ends.replace(f"inlet: {given}, ", "")), encoding="utf-8")
+    found = solve_file(path)
+    inlet = figure(found, f"T_{side}_inlet")
+    # By hand from the other side's heat and this side's flow and heat capacity at its mean.
+    solution = found.base.solutions["service"]
+    capacity = solution.number(found.chain.results[f"C {side}"])
+    outlet = solution.number(found.chain.results[f"T {side} outlet"])
+    sign = 1.0 if side == "hot" else -1.0
+    assert inlet == pytest.approx(outlet + sign * figure(found, "duty") / capacity, rel=1e-13)
+    stated = re.sub(rf"(?m)^(  {given}: +{{value: )[0-9.]+ degC", rf"\g<1>{inlet - 273.15!r} degC", text)
+    assert stated != text
+    path.write_text(stated, encoding="utf-8")
+    answer = solve_file(path)
+    assert abs(figure(answer, "closure")) < 1e-12
+    assert f"T_{side}_inlet" not in answer.base.results
+    for name in ("U_service", "area_service", "LMTD", "heat_reached_service", "area_margin_clean"):
+        assert figure(found, name) == pytest.approx(figure(answer, name), rel=1e-11), name
+    assert found.rating.day_one.clean.heat == pytest.approx(answer.rating.day_one.clean.heat, rel=1e-10)
 
 
 @pytest.mark.parametrize(("length", "effectiveness"), [("0.001 mm", 0.0), ("90 km", 1.0)])
