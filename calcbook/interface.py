@@ -12,6 +12,7 @@ from calcbook.calcfile import Calculation, Settings, read_calculation, read_sett
 from calcbook.chain.analysis import NotConverged, analyse, judged_later
 from calcbook.chain.build import build
 from calcbook.chain.outcome import Solved
+from calcbook.chain.pressure import drops
 from calcbook.chain.types import Chain
 from calcbook.documents import Mapping, Scalar, read_file
 from calcbook.faults import Collector, Fault, Faults, Place, shown
@@ -247,10 +248,10 @@ def _check_strangers(library: Library, collector: Collector) -> None:
 def _cards_of(chain: Chain) -> tuple[tuple[str, ...], tuple[str, ...]]:
     """Ids of the methods and materials that a chain may take, in the order of its terms."""
     methods: dict[str, None] = {}
-    for group in (chain.inner, chain.outer):
-        for branch in group.branches:
-            for candidate in branch.candidates:
-                methods.update(dict.fromkeys(card.id for card in candidate.cards))
+    taken = [one for branch in chain.branches for one in (*branch.candidates, *branch.alternatives)]
+    taken += [one for _, _, drop in drops(chain) for one in (*drop.laws, drop.total)]
+    for candidate in taken:
+        methods.update(dict.fromkeys(card.id for card in candidate.cards))
     named = [name.partition(" ") for name in chain.cards]
     methods.update(dict.fromkeys(card for kind, _, card in named if kind == "method"))
     return tuple(methods), tuple(card for kind, _, card in named if kind == "material")

@@ -72,6 +72,7 @@ from calcbook.chain.types import (
     Layer,
     OpenItem,
     StreamState,
+    branches_of,
 )
 from calcbook.faults import Collector, Place, nearest_names, shown
 from calcbook.formulas import number_text
@@ -748,10 +749,7 @@ class _Analysis:
         for element in self.chain.elements:
             if isinstance(element, Layer):
                 limits += element.checks
-                for way in element.gap.ways if element.gap is not None else ():
-                    limits += chosen(way, solution).checks
-                continue
-            for branch in element.branches:
+            for branch in branches_of(element):
                 limits += chosen(branch, solution).checks
         return limits
 

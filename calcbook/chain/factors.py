@@ -26,15 +26,7 @@ def factor_of(method: Method) -> str:
 
 def films_of(chain: Chain) -> tuple[Branch, ...]:
     """The films and ways across gaps whose coefficient a card gives, from the inside to the outside."""
-    return tuple(
-        branch for element in chain.elements for branch in _branches(element) if branch.situation is not None
-    )
-
-
-def _branches(element: Element) -> tuple[Branch, ...]:
-    if isinstance(element, Group):
-        return element.branches
-    return element.gap.ways if element.gap is not None else ()
+    return tuple(branch for branch in chain.branches if branch.situation is not None)
 
 
 def with_factors(chain: Chain) -> Chain:

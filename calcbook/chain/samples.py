@@ -58,6 +58,7 @@ from calcbook.chain.types import (
     Group,
     Layer,
     StreamState,
+    branches_of,
 )
 from calcbook.library.operations import run
 from calcbook.properties import PropertyFault
@@ -330,8 +331,7 @@ class _Limits:
         for element in self.chain.elements:
             if isinstance(element, Layer):
                 self._checks(found, element.checks)
-                continue
-            for branch in element.branches:
+            for branch in branches_of(element):
                 choice = both.chosen.get(branch.name, np.zeros((), dtype=int))
                 for number in numbers_in(choice):
                     self._checks(found, branch.candidates[number].checks, choice == number)
@@ -406,12 +406,11 @@ def _methods(chain: Chain, solutions: Mapping[str, Solution]) -> Iterator[Verdic
     """The method of every film that has a choice, and the friction law beside it."""
     for condition in reversed(CONDITIONS):
         solution = solutions[condition]
-        for group in (chain.inner, chain.outer):
-            for branch in group.branches:
-                choice = solution.chosen.get(branch.name)
-                if choice is not None and len(branch.candidates) > 1:
-                    names = [candidate.method.id for candidate in branch.candidates]
-                    yield _choice(branch.name, condition, names, choice, branch.choice, solution)
+        for branch in chain.branches:
+            choice = solution.chosen.get(branch.name)
+            if choice is not None and len(branch.candidates) > 1:
+                names = [candidate.method.id for candidate in branch.candidates]
+                yield _choice(branch.name, condition, names, choice, branch.choice, solution)
         for _, branch, drop in drops(chain):
             if len(drop.laws) > 1:
                 names = [law.method.id for law in drop.laws]

@@ -350,6 +350,11 @@ class Chain:
         return last
 
     @property
+    def branches(self) -> tuple[Branch, ...]:
+        """Every film and way across a gap, from the inside to the outside."""
+        return tuple(branch for element in self.elements for branch in branches_of(element))
+
+    @property
     def has_temperatures(self) -> bool:
         """Whether both bulk temperatures are known, so that heat flow and surfaces can be found."""
         return bool(self.inner.bulk and self.outer.bulk)
@@ -377,6 +382,13 @@ class Chain:
     def case_changes(self, case: str) -> dict[str, float]:
         """SI values of the givens that a case restates."""
         return dict(self.restated.get(case, {}))
+
+
+def branches_of(element: Element) -> tuple[Branch, ...]:
+    """The films of a group, or the ways across the gap of a layer."""
+    if isinstance(element, Group):
+        return element.branches
+    return element.gap.ways if element.gap is not None else ()
 
 
 def follows_temperature(element: Element, forced: Mapping[str, Candidate] | None = None) -> bool:

@@ -9,11 +9,13 @@ import pytest
 from scipy.optimize import brentq
 from small_calculations import chain_of, givens
 
+import calcbook.library
 from calcbook.chain.analysis import analyse
 from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.solve import solve
 from calcbook.chain.types import CLEAN, CONDITIONS, SERVICE, Chain
 from calcbook.faults import Collector, Faults
+from calcbook.interface import forget_house_cards, solve_file
 from calcbook.properties import pure
 
 WINDOW = {
@@ -389,3 +391,50 @@ def test_cold_water_that_grows_lighter_on_cooling_turns_a_level_gap_over(tmp_pat
         found = closed(chain_of(tmp_path, window(gap, "water", **cold)))
         assert bool(found.converged)
         assert int(found.chosen["gas"]) == method
+
+
+# --- limits and cards of a way across the gap ---------------------------------------------------------
+
+TALL = Path(__file__).resolve().parents[1] / "cases" / "ok" / "gap.yaml"
+LIMIT = "argon gap / el-sherbiny-1982-vertical / aspect ratio"
+LIBRARY_CARD = Path(calcbook.library.__file__).parent / "methods" / "el-sherbiny-1982-vertical.yaml"
+
+
+def test_samples_see_the_limits_of_a_way_as_records_do(tmp_path: Path) -> None:
+    """H/s of 75 to 150 where the card ends at 110: each row of a sweep as the record of its height."""
+    text = TALL.read_text(encoding="utf-8")
+    path = tmp_path / "gap.yaml"
+    path.write_text(f"{text}sweep:\n  H: {{from: 1.2 m, to: 2.4 m, steps: 4}}\n", encoding="utf-8")
+    swept = solve_file(path).sweep
+    told = [LIMIT in " ".join(names) for names in swept.outside]
+    alone = []
+    for height in swept.axes[0].figures:
+        path.write_text(text.replace("1.2 m", f"{float(height)!r} m"), encoding="utf-8")
+        alone.append(any(item.id.startswith(LIMIT) for item in solve_file(path).open_items))
+    assert told == alone == [False, False, True, True]
+
+
+def test_a_house_card_of_a_gap_is_held_to_its_check_points(tmp_path: Path) -> None:
+    folder = tmp_path / "cards"
+    folder.mkdir(parents=True)
+    card = LIBRARY_CARD.read_text(encoding="utf-8").replace(
+        "method: el-sherbiny-1982-vertical", "method: house-gap\nserves: [enclosure-vertical]"
+    )
+    assert card.count("gives: {Nu: 1.575") == 1
+    path = tmp_path / "gap.yaml"
+    text = TALL.read_text(encoding="utf-8").replace(
+        "situation: enclosure-vertical", "situation: enclosure-vertical\n    method: house-gap"
+    )
+    path.write_text(text, encoding="utf-8")
+    for figure, fails in (("1.575", False), ("9.9", True)):
+        (folder / "house-gap.yaml").write_text(
+            card.replace("gives: {Nu: 1.575", f"gives: {{Nu: {figure}"), encoding="utf-8"
+        )
+        # Cards are read once a process.
+        forget_house_cards()
+        if not fails:
+            assert not solve_file(path).open_items
+            continue
+        with pytest.raises(Faults) as caught:
+            solve_file(path)
+        assert "check-point-failed" in {fault.code for fault in caught.value.faults}
