@@ -28,6 +28,7 @@ from calcbook.chain.specified import SpecifiedFouling
 from calcbook.chain.streams import lay_out_stream, viscosity_checks
 from calcbook.chain.surfaces import Shape, Wall, lay_out_shape
 from calcbook.chain.types import (
+    REASON,
     SERVICE_FLAG,
     Branch,
     Candidate,
@@ -424,9 +425,9 @@ class _Builder:
     def _assumptions_of_engineer(self) -> None:
         self._history()
         for revision in self.calculation.revisions:
-            if revision.reason.casefold().strip(" .…") in ("to be written", "tbd", ""):
+            if is_empty(revision.reason):
                 self.scope.open(
-                    f"revision {revision.revision} / reason",
+                    f"revision {revision.revision} / {REASON}",
                     "revision",
                     f"The reason of revision {revision.revision} is to be written.",
                 )

@@ -98,7 +98,8 @@ class SurveyOutcome(NamedTuple):
     Rows: ``rows`` in the file = the rules' counts + ``kept``; ``kept`` = ``fitted`` + ``before_cleaning`` +
     ``not_anchored``. ``negative`` and ``not_resolved`` count among the fitted rows. ``period`` is the longest
     time since a cleaning that rows cover, in s. ``deviation`` is the standard deviation of the rows about
-    the fit, ``correlation`` that of neighbouring residuals. ``row_relations`` make the resistance of a row.
+    the fit, ``correlation`` that of neighbouring residuals; ``is_determined`` is False where the search did not come to
+    rest or the rows do not tell the parameters apart. ``row_relations`` make the resistance of a row.
     """
 
     file: str
@@ -126,6 +127,7 @@ class SurveyOutcome(NamedTuple):
     without_accuracy: tuple[str, ...]
     slope_rows: int
     deviation: float
+    is_determined: bool
     correlation: float
     period: float
     after: float

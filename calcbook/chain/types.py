@@ -226,9 +226,13 @@ class RunnerAssumption:
     acts_on: str
 
 
+# The last part of the id of an open item on a reason in the revision history that is to be written.
+REASON = "reason"
+
+
 @dataclass(frozen=True, slots=True)
 class OpenItem:
-    """What blocks issue. Kinds: check, source, assumption, state, jump, link."""
+    """What blocks issue. Kinds: check, source, assumption, state, jump, link, revision."""
 
     id: str
     kind: str

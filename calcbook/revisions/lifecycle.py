@@ -7,7 +7,6 @@ from dataclasses import dataclass, replace
 from pathlib import Path
 
 from calcbook.calcfile import Calculation, Settings
-from calcbook.calcfile.empty import is_empty
 from calcbook.calcfile.reading import NUMBER
 from calcbook.chain.outcome import Solved
 from calcbook.chain.types import OpenItem
@@ -103,7 +102,7 @@ def lifecycle_of(calc_path: Path, solved: Solved | None, output: Path) -> Lifecy
     copies = issued_copies(output, calculation.number)
     content = content_of(solved)
     judged = judge(kept, calculation, content)
-    items = open_items_of(solved)
+    items = solved.open_items
     current = next(
         (copy for copy in copies if copy.revision.casefold() == calculation.revision.casefold()), None
     )
@@ -143,25 +142,6 @@ def _unsolved(calc_path: Path, output: Path) -> Lifecycle:
     void = read_signoffs(signoffs_path(calc_path)).void
     return Lifecycle(
         number, revision, VOID if void else NOT_KNOWN, NOT_KNOWN, (), copies, (), None, False, void
-    )
-
-
-def open_items_of(solved: Solved) -> tuple[OpenItem, ...]:
-    """The open items of every case, and of the revision history: a reason that is still to be written."""
-    found = {item.id: item for item in (*solved.open_items, *unwritten_reasons(solved.chain.calculation))}
-    return tuple(found.values())
-
-
-def unwritten_reasons(calculation: Calculation) -> tuple[OpenItem, ...]:
-    """An open item for each line of the revision history whose reason is still to be written."""
-    return tuple(
-        OpenItem(
-            f"revision {item.revision} / reason",
-            "revision",
-            f"The reason of revision {item.revision} is to be written.",
-        )
-        for item in calculation.revisions
-        if is_empty(item.reason)
     )
 
 

@@ -255,6 +255,7 @@ class _Survey:
             without_accuracy=tuple(without),
             slope_rows=len(chosen),
             deviation=found.deviation,
+            is_determined=found.determined,
             correlation=found.correlation,
             period=float(found.data.times.max()),
             after=self.survey.proposal.after.value,
@@ -508,13 +509,20 @@ class _Survey:
             for one in outcome.figures
             if not one.held and not abs(one.upper - one.value) <= abs(one.value)
         ]
-        if not wide:
-            return ()
-        text = (
-            f"The rows do not determine {', '.join(wide)} of {outcome.model}: the 95 % bounds reach beyond zero or"
-            " twice the figure."
-        )
-        return (OpenItem("survey/fit", "check", text),)
+        items = []
+        if wide:
+            text = (
+                f"The rows do not determine {', '.join(wide)} of {outcome.model}: the 95 % bounds reach beyond zero or"
+                " twice the figure."
+            )
+            items.append(OpenItem("survey/fit", "check", text))
+        if not outcome.is_determined:
+            text = (
+                f"The fit of {outcome.model} did not come to rest, or the rows do not tell its parameters apart: its"
+                " figures are those of the last step."
+            )
+            items.append(OpenItem("survey/fit at rest", "check", text))
+        return tuple(items)
 
     def cards(self) -> dict[str, str]:
         """The cards that the survey used, with what the digest binds of them."""

@@ -136,9 +136,11 @@ def test_confirmation_is_preliminary_while_anything_is_open(tmp_path: Path) -> N
     assert life(path).confirmation == "preliminary"
 
 
-def test_a_reason_to_be_written_is_an_open_item(tmp_path: Path) -> None:
-    path = make_book(tmp_path, CALCULATION.replace("reason: First issue", "reason: to be written"))
+@pytest.mark.parametrize("reason", ["to be written", "TODO", "tbd.", '"-"'])
+def test_a_reason_to_be_written_is_an_open_item(tmp_path: Path, reason: str) -> None:
+    path = make_book(tmp_path, CALCULATION.replace("reason: First issue", f"reason: {reason}"))
     now = life(path)
+    assert "revision A / reason" in record_text(work_of(path).solved)
     assert now.confirmation == "preliminary"
     assert [item.id for item in now.open_items] == ["revision A / reason"]
 

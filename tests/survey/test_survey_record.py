@@ -15,6 +15,7 @@ from calcbook.quantities import read_any
 from calcbook.record import digest_of
 from calcbook.record.results import results_data
 from calcbook.record.software import software_of
+from calcbook.survey import fitting
 
 TRUTH = Truth(errors=drawn(3))
 TAKING = COOLER.replace("number: T-105", "number: T-106").replace(
@@ -164,3 +165,13 @@ def test_a_calculation_without_a_survey_has_none(tmp_path: Path) -> None:
     solved = solve(read(path))
     assert solved.survey is None
     assert "Survey of plant data" not in record_text(solved)
+
+
+def test_a_fit_that_did_not_come_to_rest_is_an_open_item(
+    tmp_path: Path, rows: list[list[str]], monkeypatch: pytest.MonkeyPatch
+) -> None:
+    name = "survey/fit at rest"
+    assert name not in {item.id for item in solved_survey(tmp_path, rows, SURVEY).open_items}
+    monkeypatch.setattr(fitting, "PASSES", 1)
+    monkeypatch.setattr(fitting, "START_PASSES", 1)
+    assert name in {item.id for item in solved_survey(tmp_path, rows, SURVEY).open_items}
