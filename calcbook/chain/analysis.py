@@ -84,12 +84,14 @@ from calcbook.quantities import Quantity, QuantityFault, QuantityKind, as_kind, 
 Array = np.ndarray
 CONTROLLING_SHARE = 0.5
 DUTY_LOST = "time_until_duty_lost"
-# Results that the rooms above make of the solved base case, by how they start, with the key that asks for them.
+MEAN_OF_PLACES = " mean of places"
+# Results that are made of the solved base case, by how they start, with the key that asks for them.
 LATER = {
     DUTY_LOST: "time in service",
     "cleaning_interval": "cleaning",
     "allowance_": "survey",
     "fitted ": "survey",
+    **{f"U_{condition}{MEAN_OF_PLACES}": "evaluate at" for condition in CONDITIONS},
 }
 # What the heat flow does to a stream, by the first word of the result: its quantity and what it is.
 IMPLIED = {
@@ -817,6 +819,7 @@ class _Analysis:
             "time in service": calculation.time_in_service is not None,
             "cleaning": calculation.cleaning is not None,
             "survey": calculation.survey is not None,
+            "evaluate at": bool(calculation.places),
         }
         return asked[key]
 
@@ -1247,8 +1250,9 @@ def _with_mean(cases: list[CaseOutcome], places: tuple[str, ...]) -> CaseOutcome
     for condition in reversed(CONDITIONS):
         values = [case.results[f"U_{condition}"].value for case in at.values()]
         mean = sum(values) / len(values)
-        results[f"U_{condition} mean of places"] = Result(
-            f"U_{condition} mean of places",
+        name = f"U_{condition}{MEAN_OF_PLACES}"
+        results[name] = Result(
+            name,
             mean,
             base.results[f"U_{condition}"].kind,
             f"arithmetic mean of U {condition} over {', '.join(at)}",

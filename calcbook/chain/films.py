@@ -9,7 +9,7 @@ from calcbook.calcfile.calculation import Term, Value
 from calcbook.chain.fluids import FixedOperation, LiquidOperation, PropertyOperation
 from calcbook.chain.scope import Scope
 from calcbook.chain.types import ABSENT, Branch, Candidate, ChainCheck, ChainStep, ChoiceRow, StreamState
-from calcbook.faults import Collector, Faults, nearest_names, shown
+from calcbook.faults import Faults, nearest_names, shown
 from calcbook.formulas import Relation, parse_expression
 from calcbook.library import Library, Program
 from calcbook.library.cards import Limit, Method, Need, Situation
@@ -870,20 +870,18 @@ class FilmScope:
         for method in self.situation.methods:
             if method in laid_out:
                 continue
-            kept = (self.scope.collector, self.scope.assumptions, self.scope.used_in, self.missing)
-            before = dict(self.scope.steps)
-            self.scope.collector, self.missing = Collector(), set()
-            self.scope.assumptions, self.scope.used_in = dict(kept[1]), {}
-            candidate = self.candidate(method, "cross-check", is_used=False)
-            reasons = [fault.message for fault in self.scope.collector]
-            self.scope.collector, self.scope.assumptions, self.scope.used_in, self.missing = kept
-            if candidate is not None and not reasons:
+            # A record lists neither what they assume nor where they use a figure.
+            notes, missing, candidate = (self.scope.assumptions, self.scope.used_in), self.missing, None
+            self.missing = set()
+            with self.scope.trial() as trial:
+                self.scope.assumptions, self.scope.used_in = dict(notes[0]), {}
+                candidate = self.candidate(method, "cross-check", is_used=False)
+                trial.keeps = candidate is not None
+            (self.scope.assumptions, self.scope.used_in), self.missing = notes, missing
+            if candidate is not None and not trial.faults:
                 found.append(candidate)
             else:
-                # What it had begun to lay out leads nowhere: the chain holds only steps that something uses.
-                self.scope.steps.clear()
-                self.scope.steps.update(before)
-                unusable[method] = "; ".join(reasons)
+                unusable[method] = "; ".join(fault.message for fault in trial.faults)
         return tuple(found), unusable
 
 

@@ -86,7 +86,7 @@ def stream_findings(
             ],
             values,
         )
-        fluid = _fluid_at(state, values, collector)
+        fluid = _fluid_at(state, values, collector, f"stream {state.name}", case)
         if fluid is None:
             continue
         temperature = float(values[state.temperature])
@@ -333,7 +333,7 @@ def _check_gaps(chain: Chain, values: dict[str, Any], collector: Collector, case
     for layer, gap in gaps(chain):
         stated = (gap.fluid.pressure, gap.fluid.fraction)
         run([step for step in layer.steps if step.id in stated and step.id not in values], values)
-        fluid = _fluid_at(gap.fluid, values, collector)
+        fluid = _fluid_at(gap.fluid, values, collector, f"gap {gap.fluid.name}", case)
         between = (float(values[chain.inner.bulk]) + float(values[chain.outer.bulk])) / 2.0
         for finding in fluid.check_state(between, gap.fluid.phase or None) if fluid is not None else ():
             if finding.code.endswith("-model"):
@@ -417,7 +417,10 @@ def film_steps(chain: Chain) -> Iterator[ChainStep]:
                     yield from candidate.steps
 
 
-def _fluid_at(state: StreamState, values: Mapping[str, Any], collector: Collector) -> FluidAtPressure | None:
+def _fluid_at(
+    state: StreamState, values: Mapping[str, Any], collector: Collector, what: str, case: str
+) -> FluidAtPressure | None:
+    """The fluid of ``what`` in a case; None after a fault."""
     pressure = float(values[state.pressure]) if state.pressure else None
     fraction = float(values[state.fraction]) if state.fraction else None
     try:
@@ -426,7 +429,7 @@ def _fluid_at(state: StreamState, values: Mapping[str, Any], collector: Collecto
         collector.add(
             error.code,
             state.place,
-            f"stream {state.name}: {error.message}",
+            f"{f'case {case}: ' if case else ''}{what}: {error.message}",
             expected=error.expected,
             nearest=error.nearest,
         )

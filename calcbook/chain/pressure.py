@@ -26,7 +26,7 @@ from calcbook.chain.types import (
     OpenItem,
     PressureDrop,
 )
-from calcbook.faults import Collector, Fault, Faults
+from calcbook.faults import Fault
 from calcbook.formulas import evaluate
 from calcbook.library.cards import Choice, Friction, Method
 from calcbook.library.operations import run
@@ -55,27 +55,20 @@ def asked_symbols(film: FilmScope) -> set[str]:
 def lay_out_pressure_drop(film: FilmScope) -> tuple[PressureDrop | None, str]:
     """The pressure drop of a film's stream; None with the reason where a figure for it is not stated.
 
-    What is stated wrongly is a fault as anywhere else. A layout that fails leaves no step behind.
+    What is stated wrongly is a fault as anywhere else. A layout that fails leaves nothing behind.
     """
     assert film.situation is not None
     friction = film.situation.friction
     if friction is None:
         return None, ""
-    scope = film.scope
-    collector, steps, assumptions = scope.collector, dict(scope.steps), dict(scope.assumptions)
-    used_in = {symbol: list(places) for symbol, places in scope.used_in.items()}
-    scope.collector = Collector()
-    try:
+    drop = None
+    with film.scope.trial() as trial:
         drop = _Layout(film, friction).laid_out()
-    except Faults as error:
-        scope.collector.take(error.faults)
-        drop = None
-    found, scope.collector = list(scope.collector), collector
-    if drop is not None and not found:
+        trial.keeps = drop is not None
+    if drop is not None and not trial.faults:
         return drop, ""
-    scope.steps, scope.assumptions, scope.used_in = steps, assumptions, used_in
-    collector.take([fault for fault in found if fault.code not in LACKING])
-    return None, "; ".join(_reason(fault) for fault in found)
+    film.scope.collector.take([fault for fault in trial.faults if fault.code not in LACKING])
+    return None, "; ".join(_reason(fault) for fault in trial.faults)
 
 
 def _reason(fault: Fault) -> str:

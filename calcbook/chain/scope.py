@@ -3,14 +3,15 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
+from contextlib import contextmanager
 from dataclasses import dataclass, field
 
 from calcbook.calcfile import Calculation
 from calcbook.calcfile.calculation import Given, Value
 from calcbook.calcfile.empty import is_empty
 from calcbook.chain.types import ABOVE_SITE, ChainStep, Input, OpenItem, RunnerAssumption
-from calcbook.faults import Collector, Place, nearest_names, shown
+from calcbook.faults import Collector, Fault, Faults, Place, nearest_names, shown
 from calcbook.formulas import Relation, RelationFault, dimension
 from calcbook.library import vocabulary
 from calcbook.library.operations import Operation, RelationOperation
@@ -28,6 +29,28 @@ STANDARD_PRESSURE = 101_325.0
 
 
 @dataclass
+class Trial:
+    """What came of a trial: its faults, and whether what it laid out stays (with a fault it never does)."""
+
+    keeps: bool = False
+    faults: tuple[Fault, ...] = ()
+
+
+# What a scope holds by name; a trial that fails takes all of it back.
+LAID_OUT = (
+    "inputs",
+    "constants",
+    "steps",
+    "dimensions",
+    "assumptions",
+    "open_items",
+    "used_in",
+    "kinds",
+    "cards",
+)
+
+
+@dataclass
 class Scope:
     """What the builder has laid out so far."""
 
@@ -42,6 +65,27 @@ class Scope:
     used_in: dict[str, list[str]] = field(default_factory=dict)
     kinds: dict[str, QuantityKind] = field(default_factory=dict)
     cards: dict[str, str] = field(default_factory=dict)
+
+    # -- trials -------------------------------------------------------------------------------------
+
+    @contextmanager
+    def trial(self) -> Iterator[Trial]:
+        """Lay out something that may lack a figure: it leaves nothing behind unless the trial ``keeps`` it.
+
+        Its faults, those that are raised too, go to the trial and not to the collector.
+        """
+        collector, before = self.collector, {name: dict(getattr(self, name)) for name in LAID_OUT}
+        before["used_in"] = {symbol: list(places) for symbol, places in self.used_in.items()}
+        self.collector, trial = Collector(), Trial()
+        try:
+            yield trial
+        except Faults as error:
+            self.collector.take(error.faults)
+        finally:
+            trial.faults, self.collector = tuple(self.collector), collector
+            if trial.faults or not trial.keeps:
+                for name, figures in before.items():
+                    setattr(self, name, figures)
 
     # -- notes --------------------------------------------------------------------------------------
 

@@ -525,6 +525,19 @@ def test_what_is_not_stated_gives_no_pressure_drop_and_no_fault(tmp_path: Path) 
     assert not any("flow length" in step.title for step in chain.steps)
 
 
+def test_a_pressure_drop_that_lacks_a_figure_leaves_nothing_behind(tmp_path: Path) -> None:
+    rough = ", method: colburn-1933, with: {roughness: 0.05 mm}"
+    chain = chain_of(tmp_path, tube(rough, "parallel: N"))
+    assert not drops(chain)
+    taken = {bound for step in chain.steps for bound in step.inputs.values()}
+    stated = {name for name in chain.inputs if "/with " in name}
+    assert stated <= taken and not stated
+    assert not any("with" in item.id for item in chain.open_items)
+    whole = chain_of(tmp_path, tube(rough))
+    assert drops(whole) and any(name.startswith("tube film/with ") for name in whole.inputs)
+    assert any("with" in item.id for item in whole.open_items)
+
+
 def test_what_is_stated_wrongly_is_a_fault(tmp_path: Path) -> None:
     with pytest.raises(Faults) as caught:
         chain_of(tmp_path, tube(", with: {e: {value: 3 kg, source: test}}"))
