@@ -111,7 +111,6 @@ class _Builder:
             return None
         shape = lay_out_shape(scope, calculation.geometry, walls)
         if not self._order_holds(terms) or shape is None:
-            self._mark_unused()
             return None
         shape, self.finned = lay_out_fins(scope, terms, shape)
         self.checks += shape.checks
@@ -127,7 +126,6 @@ class _Builder:
         self._assumptions_of_engineer()
         check_services(calculation, self.collector)
         if self.collector or basis is None or elements is None:
-            self._mark_unused()
             return None
         elements = with_saturation_losses(scope, elements, self.streams)
         laid_out = Circuit(scope, elements, shape, basis, self.streams, self.speeds)
@@ -940,7 +938,7 @@ class _Builder:
 
     def _branch(self, term: Term, group: str, shape: Shape, side: str, surface: int) -> Branch | None:
         if term.kind == "radiation":
-            return self._radiation(term, group, shape)
+            return self._radiation(term, group)
         if "coefficient" in term.values or "resistance" in term.values:
             return self._stated_film(term, shape, surface)
         return self._film(term, group, shape, side)
@@ -1247,7 +1245,7 @@ class _Builder:
         name = self.scope.in_relation(key, term.name, f"{term.name}, holds for")
         return name if name in self.scope.dimensions else ""
 
-    def _radiation(self, term: Term, group: str, shape: Shape) -> Branch | None:
+    def _radiation(self, term: Term, group: str) -> Branch | None:
         emissivity = self.scope.value(term.values.get("emissivity"), "emissivity", term.name, "emissivity")
         surroundings = self.scope.value(
             term.values.get("surroundings"), "temperature", term.name, "surroundings"

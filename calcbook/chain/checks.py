@@ -178,18 +178,17 @@ def _figure_and_limit(
     unit = unit_display(si_unit(dimension(checked, dims)))
     name = write(checked)
     if unknown:
-        return f"{name} is not known", _limit_text(tree, operands, place, arguments, dims, ()), math.nan, unit
+        return f"{name} is not known", _limit_text(tree, operands, place, dims, ()), math.nan, unit
     numbers = [float(np.asarray(evaluate(operand, arguments)).ravel()[0]) for operand in operands]
     others = tuple(number for index, number in enumerate(numbers) if index != place)
     figure = f"{name} = {apart(numbers[place], others)}{_unit(unit)}"
-    return figure, _limit_text(tree, operands, place, arguments, dims, tuple(numbers)), numbers[place], unit
+    return figure, _limit_text(tree, operands, place, dims, tuple(numbers)), numbers[place], unit
 
 
 def _limit_text(
     tree: Compare,
     operands: list[Node],
     place: int,
-    arguments: Mapping[str, np.ndarray],
     dims: Mapping[str, tuple],
     numbers: tuple[float, ...],
 ) -> str:

@@ -423,10 +423,10 @@ class DutyLayout:
 
     # -- after the circuit ----------------------------------------------------------------------------
 
-    def rating(self, circuit: Mapping[str, str], area: str, elements: tuple[Element, ...]) -> bool:
-        """Mean difference, required area, margin, effectiveness; False after a fault."""
+    def rating(self, circuit: Mapping[str, str], area: str, elements: tuple[Element, ...]) -> None:
+        """Mean difference, required area, margin, effectiveness."""
         if not self._streams_have_films(elements):
-            return False
+            return
         overall = circuit["U"]
         self.results["area installed"] = area
         if not self.is_by_effectiveness:
@@ -437,9 +437,8 @@ class DutyLayout:
             for name in SIDES:
                 if name != self.isothermal:
                     self._found_outlet(name, self.results["heat reached"], SERVICE)
-            return True
-        if not self._difference():
-            return False
+            return
+        self._difference()
         driving = {"Q_d": self.results["duty"], "dT_lm": self.results["LMTD"]}
         factor = ""
         if "F" in self.results:
@@ -480,7 +479,6 @@ class DutyLayout:
         )
         self._reached(overall, area)
         self._second_way(area)
-        return True
 
     def _changes_phase(self, heat: str) -> None:
         """The flow of the saturated stream that the heat needs, beside the stated one."""
@@ -506,7 +504,7 @@ class DutyLayout:
                 )
         return all(side.stream in touched for side in self.duty.sides.values())
 
-    def _difference(self) -> bool:
+    def _difference(self) -> None:
         """The logarithmic mean difference, and F where the flows do not pass each other end to end."""
         ends = {**self._ends("hot"), **self._ends("cold")}
         pairs = ("T_hi - T_co", "T_ho - T_ci")
@@ -524,15 +522,11 @@ class DutyLayout:
                 "ends of the streams",
                 "temperature difference",
             )
-        found = self._card("lmtd", differences)
-        if not found:
-            return False
-        self.results["LMTD"] = found
-        if self.isothermal or self.duty.arrangement in ("counterflow", "parallel flow"):
-            return True
-        return self._factor(ends)
+        self.results["LMTD"] = self._card("lmtd", differences)
+        if not (self.isothermal or self.duty.arrangement in ("counterflow", "parallel flow")):
+            self._factor(ends)
 
-    def _factor(self, ends: Mapping[str, str]) -> bool:
+    def _factor(self, ends: Mapping[str, str]) -> None:
         figures = {
             "capacity flow ratio": self._step(
                 "R",
@@ -557,7 +551,6 @@ class DutyLayout:
         # The temperature effectiveness is that of the cold stream.
         mixed = "this" if self.duty.arrangement == "crossflow cold mixed" else "other"
         self.results["F"] = self._card(FACTORS[self.duty.arrangement], figures, words={"mixed": mixed})
-        return True
 
     def _reached(self, overall: str, area: str) -> None:
         """The heat that the installed area transfers from the same inlets, by effectiveness."""
@@ -780,8 +773,5 @@ def duty_results(
 
 def duty_step(chain: Chain, name: str) -> tuple[str, str] | None:
     """The condition and the id of the step that a result of the duty is taken from; None for another name."""
-    for condition, table in ((SERVICE, _RESULTS), (CLEAN, _CLEAN_RESULTS)):
-        for result, key, *_ in table:
-            if result == name and key in chain.results:
-                return condition, chain.results[key]
-    return None
+    condition, key = DUTY_RESULTS.get(name, ("", ""))
+    return (condition, chain.results[key]) if key in chain.results else None

@@ -587,7 +587,7 @@ def _phase_limits(
                 WallLimit(owner, name, that, sign, surface, figures, acts, because, state.fluid_name)
             )
 
-    changing = not phase_change
+    keeps_phase = not phase_change
     what = "stated coefficient" if stated else "method"
     add(
         "boils",
@@ -595,7 +595,7 @@ def _phase_limits(
         "boiling",
         "<",
         f"the {what} is for a liquid without boiling at the surface",
-        [one is not None and one.has_vapour and changing and one.phase == "liquid" for one in facts],
+        [one is not None and one.has_vapour and keeps_phase and one.phase == "liquid" for one in facts],
     )
     add(
         "condenses",
@@ -606,7 +606,7 @@ def _phase_limits(
         [
             one is not None
             and one.has_vapour
-            and changing
+            and keeps_phase
             and not stated
             and one.phase == "gas"
             and not math.isnan(one.boiling)

@@ -12,7 +12,7 @@ from calcbook.calcfile.calculation import Given, Value
 from calcbook.calcfile.empty import is_empty
 from calcbook.chain.types import ABOVE_SITE, ChainStep, Input, OpenItem, RunnerAssumption
 from calcbook.faults import Collector, Fault, Faults, Place, nearest_names, shown
-from calcbook.formulas import Relation, RelationFault, dimension
+from calcbook.formulas import Relation, RelationFault, dimension, parse_expression
 from calcbook.library import vocabulary
 from calcbook.library.operations import Operation, RelationOperation
 from calcbook.quantities import (
@@ -186,13 +186,13 @@ class Scope:
             return ""
         self.used_in.setdefault(symbol, []).append(use)
         if given is not None and given.value.quantity is not None and given.value.quantity.reading == "gauge":
-            return self._above_site(name, symbol, owner, symbol)
+            return self._above_site(name, owner, symbol)
         return name
 
     def above_site(self, quantity: Quantity, name: str, owner: str) -> str:
         """The id of a figure that bounds another, held as a constant; a gauge pressure as the absolute one."""
         name = self.constant(name, quantity.value, quantity.dimension)
-        return self._above_site(name, "p", owner, owner) if quantity.reading == "gauge" else name
+        return self._above_site(name, owner, owner) if quantity.reading == "gauge" else name
 
     def _named(self, value: Value, kind: QuantityKind, owner: str, key: str) -> str:
         symbol = value.symbol
@@ -266,7 +266,7 @@ class Scope:
             self._say_reading(reading, one.value, f"given {one.symbol}")
         self.kinds.setdefault(given.symbol, kind)
         name = f"given/{given.symbol}"
-        return self._above_site(name, given.symbol, owner, owner) if gauge else name
+        return self._above_site(name, owner, owner) if gauge else name
 
     def _literal(self, value: Value, kind: QuantityKind, owner: str, key: str) -> str:
         reading = self._as_kind(value, kind, f"{owner}, {key}")
@@ -282,7 +282,7 @@ class Scope:
             self.dimensions[name] = kind.dimension
             self.check_source(value, name)
         self._say_reading(reading, value, f"{owner}, {key}")
-        return self._above_site(name, kind.symbol, owner, owner) if reading == "gauge" else name
+        return self._above_site(name, owner, owner) if reading == "gauge" else name
 
     def _as_kind(self, value: Value, kind: QuantityKind, use: str) -> str | None:
         """How a figure reads as a kind (its reading), or None after a fault."""
@@ -318,10 +318,8 @@ class Scope:
                 where,
             )
 
-    def _above_site(self, name: str, symbol: str, owner: str, what: str) -> str:
+    def _above_site(self, name: str, owner: str, what: str) -> str:
         """The absolute pressure that belongs to a gauge pressure of ``what``."""
-        from calcbook.formulas import parse_expression
-
         site = self.site_pressure()
         return self.relation_step(
             f"{name}{ABOVE_SITE}",

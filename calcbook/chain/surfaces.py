@@ -198,7 +198,7 @@ def _round(
             expected="a term of kind wall between the films",
         )
         return None
-    diameters = [_bore(scope, geometry, walls, thicknesses, values)]
+    diameters = [_bore(scope, geometry, thicknesses, values)]
     for index, wall in enumerate(walls):
         outer = scope.value(
             wall.values.get("outside diameter"), "outside diameter", wall.name, "outside diameter"
@@ -248,13 +248,11 @@ def _round(
             dimensions["tube passes"] = values["passes"]
         if not per_metre:
             dimensions |= {"length": heated, "tube length": length}
-    checks = _bundle_checks(scope, geometry, values, tubes, length)
+    checks = _bundle_checks(geometry, values, tubes, length)
     return Shape(geometry.shape, surfaces, laid, dimensions, per_metre, checks=checks)
 
 
-def _bore(
-    scope: Scope, geometry: Geometry, walls: tuple[Term, ...], thicknesses: list[str], values: dict[str, str]
-) -> str:
+def _bore(scope: Scope, geometry: Geometry, thicknesses: list[str], values: dict[str, str]) -> str:
     if "inside diameter" in values:
         return values["inside diameter"]
     if "outside diameter" in values and thicknesses and thicknesses[0]:
@@ -360,7 +358,7 @@ def _refuse_parts_of_tubes(scope: Scope, geometry: Geometry) -> None:
 
 
 def _bundle_checks(
-    scope: Scope, geometry: Geometry, values: dict[str, str], tubes: str, length: str
+    geometry: Geometry, values: dict[str, str], tubes: str, length: str
 ) -> tuple[ChainCheck, ...]:
     """That a bundle keeps open tubes, a tube or more for each pass, and an effective length within the length."""
     checks = []

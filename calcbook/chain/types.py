@@ -22,11 +22,11 @@ from calcbook.quantities import QuantityKind
 Array = np.ndarray
 CLEAN, SERVICE = "clean", "service"
 CONDITIONS = (CLEAN, SERVICE)
-# The figure that is 1 in service and 0 clean: it narrows a bore by a deposit.
 # How the constant of a figure ends that is taken for want of a stated one.
 ABSENT = " absent"
 # How the step ends that gives the absolute pressure of a gauge one.
 ABOVE_SITE = "/absolute"
+# The figure that is 1 in service and 0 clean: it narrows a bore by a deposit.
 SERVICE_FLAG = "condition/service"
 
 
@@ -166,7 +166,6 @@ class Group:
     surface: int
     bulk: str
     branches: tuple[Branch, ...]
-    stated_resistance: str = ""
 
     @property
     def surface_temperature(self) -> str:

@@ -619,7 +619,8 @@ def _interpolated(margins: list[float], figures: list[float]) -> float:
 def _whole_between(low: float, high: float, places: list[float]) -> list[float]:
     """Whole numbers that divide an interval: evenly, and next to where a margin passes zero."""
     lowest, highest = sorted((low, high))
-    figures = {float(round(lowest + (highest - lowest) * part / (EVENLY_AT_END + 1))) for part in range(1, 8)}
+    parts = range(1, EVENLY_AT_END + 1)
+    figures = {float(round(lowest + (highest - lowest) * part / (EVENLY_AT_END + 1))) for part in parts}
     for place in places:
         figures |= {float(math.floor(place)), float(math.ceil(place))}
     return [figure for figure in figures if lowest < figure < highest]

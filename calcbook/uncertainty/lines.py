@@ -76,11 +76,7 @@ def _words(factor: float) -> tuple[str, str]:
 
 def _whole(item: Input, now: float, direction: int) -> Reach:
     """Whole numbers: each of the nearest, then in widening steps."""
-    lowest = (
-        0.0
-        if item.kind.sign == "not negative" or item.kind.name in ("plugged tubes", "sealing strips")
-        else 1.0
-    )
+    lowest = 0.0 if item.kind.sign == "not negative" else 1.0
     far = FACTOR * max(now, 1.0)
     offsets = [*range(1, WHOLE_NEAR), *np.geomspace(WHOLE_NEAR, far, POINTS - WHOLE_NEAR).round()]
     figures = dict.fromkeys(now + direction * float(offset) for offset in offsets)

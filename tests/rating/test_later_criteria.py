@@ -11,7 +11,7 @@ from test_time_in_service import TABLE, money, solved
 
 from calcbook.chain.outcome import CriterionResult, Solved
 from calcbook.faults import Faults
-from calcbook.interface import record_text
+from calcbook.interface import record_text, solve_file
 from calcbook.record import digest_of, results_data, software_of
 
 LOST = "time_until_duty_lost"
@@ -151,3 +151,21 @@ def test_a_case_that_restates_a_limit_alone_is_judged(tmp_path: Path, days: floa
     cases = f"cases:\n  stricter:\n    t_lim: {{value: {math.ceil(days) + 1} days, source: test}}\n"
     result = solved(tmp_path, body + stated(f"{LOST} >= t_lim") + cases)
     assert [case.criteria[0].met for case in result.cases] == [True, False]
+
+
+def test_the_mean_of_places_along_the_unit_is_judged(tmp_path: Path) -> None:
+    text = (Path(__file__).resolve().parents[2] / "calcs" / "oc-201.yaml").read_text(encoding="utf-8")
+    assert text.count("that: U_service >= 60 ") == 1
+    path = tmp_path / "oc-201.yaml"
+    for limit, met in (("61", True), ("61.1", False)):
+        path.write_text(
+            text.replace("that: U_service >= 60 ", f"that: U_service mean of places >= {limit} "),
+            encoding="utf-8",
+        )
+        solution = solve_file(path)
+        places = [case for case in solution.cases if case.name in solution.chain.calculation.places]
+        mean = sum(case.results["U_service"].value for case in places) / len(places)
+        item = judged(solution)[0]
+        assert item.value == mean and item.met is met
+        # It is a result of the base case alone.
+        assert [case.name for case in solution.cases if case.criteria] == [""]
