@@ -362,7 +362,7 @@ class _Differences:
             for part, part_key, was, now in self._pairs(old, new, name):
                 self._whole(
                     (section, name, part),
-                    "assumption",
+                    "assumption" if part == "verified" else "text only",
                     f"assumption {name}, {part}",
                     was,
                     now,

@@ -250,6 +250,16 @@ def test_streams_fluids_methods_and_cases_of_an_example() -> None:
     ]
 
 
+def test_a_reworded_assumption_stands_apart_from_one_that_is_verified() -> None:
+    old = example("wc-101")
+    basis = "basis: to be confirmed at the next shutdown"
+    assert old.count(basis) == 1
+    found = changes_between(example_side(old), example_side(old.replace(basis, "basis: seen in 2025")))
+    assert [(change.id, change.kind, change.moves) for change in found] == [
+        ("assumptions/A1/basis", "text only", False)
+    ]
+
+
 def test_a_fraction_of_a_mixture_is_a_figure_of_its_stream() -> None:
     old = example("gc-401").replace("mass fraction: w_eg", "mass fraction: 40 %")
     (change,) = changes_between(

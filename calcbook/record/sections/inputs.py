@@ -106,7 +106,7 @@ def _given_row(given: Given, page: Page) -> tuple[str, ...]:
         shown,
         given.meaning or "no meaning stated",
         given.value.text,
-        si_text(item),
+        f"{si_text(item)}{_base(given)}",
         _tolerance(given),
         given.source or "no source",
         "; ".join(used) or "nothing uses it",
@@ -129,6 +129,12 @@ def stated_choices(page: Page) -> Iterator[tuple[str, Value]]:
 def si_text(item: Input) -> str:
     """A figure in SI with its unit, every digit that it was given with."""
     return with_unit(number(item.value, AS_GIVEN_DIGITS), unit_text(item.kind.unit))
+
+
+def _base(given: Given) -> str:
+    """That a pressure counts from that of the site, as the absolute one stands in the chain."""
+    quantity = given.value.quantity
+    return " gauge" if quantity is not None and quantity.reading == "gauge" else ""
 
 
 def _tolerance(given: Given) -> str:
