@@ -238,11 +238,12 @@ class _Search:
     def _lay_out(self) -> None:
         """The first samples: the cases themselves, and every given of each over its search."""
         states = changes_fluid_state(self.chain)
+        inputs = {name: item for name, item in self.chain.inputs.items() if self._acts(item)}
         for case in range(len(self.cases)):
-            for name, item in self.chain.inputs.items():
+            for name, item in inputs.items():
                 now = float(self.base[name][case])
                 whole = bool(item.kind.counts) and now == int(now)
-                for direction in (-1, 1) if item.is_given else ():
+                for direction in (-1, 1):
                     far = reach(item, now, direction, name in states)
                     self.lines.append(
                         _Line(
@@ -258,6 +259,11 @@ class _Search:
                         )
                     )
         self._evaluate([(line, line.reach.figures) for line in self.lines if line.reach.figures], first=True)
+
+    def _acts(self, item: Input) -> bool:
+        """Whether anything takes a given: a step, or a criterion as its limit."""
+        limits = {criterion.limit.symbol for criterion in self.chain.calculation.acceptance}
+        return item.is_given and bool(self.chain.used_in.get(item.symbol) or item.symbol in limits)
 
     def _evaluate(self, wanted: list[tuple[_Line, tuple[float, ...]]], first: bool = False) -> None:
         """Evaluate new figures of lines, in one call; the ``first`` call starts with the cases as they stand."""

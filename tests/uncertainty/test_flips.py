@@ -90,6 +90,15 @@ def test_the_controlling_term_flips_at_half_of_the_resistance(tmp_path: Path) ->
     assert one(found, CONTROLLING, "h_2").at == pytest.approx(1.0 / 8.25e-4, rel=2e-9)
 
 
+def test_a_given_that_nothing_takes_is_not_searched(tmp_path: Path) -> None:
+    assert PLANE.count("givens:\n") == 1
+    idle = PLANE.replace("givens:\n", "givens:\n      idle: {value: 3 mm, is: spare, source: test}\n")
+    before, found = flips_of(tmp_path, PLANE), flips_of(tmp_path, idle)
+    assert {one.input.symbol for one in found.searched} == {one.input.symbol for one in before.searched}
+    assert "U_min" in {one.input.symbol for one in found.searched}
+    assert found.flips == before.flips
+
+
 def test_ranks_are_by_the_change_in_per_cent(tmp_path: Path) -> None:
     steps = [flip.steps for flip in flips_of(tmp_path, PLANE).of_kind(CRITERION)]
     assert steps == sorted(steps)
