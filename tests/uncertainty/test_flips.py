@@ -96,7 +96,11 @@ def test_a_given_that_nothing_takes_is_not_searched(tmp_path: Path) -> None:
     before, found = flips_of(tmp_path, PLANE), flips_of(tmp_path, idle)
     assert {one.input.symbol for one in found.searched} == {one.input.symbol for one in before.searched}
     assert "U_min" in {one.input.symbol for one in found.searched}
-    assert found.flips == before.flips
+    told = [
+        [(flip.kind, flip.id, flip.input.symbol, flip.becomes, flip.at) for flip in one.flips]
+        for one in (before, found)
+    ]
+    assert told[0] == told[1] and len(told[0]) > 5
 
 
 def test_ranks_are_by_the_change_in_per_cent(tmp_path: Path) -> None:
