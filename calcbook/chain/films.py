@@ -45,7 +45,8 @@ FIXED_FIGURES = {"critical pressure": "p_c", "molar mass": "M"}
 class FilmScope:
     """Everything that one film term may ask for, made into steps when it is first asked for.
 
-    ``dimensions`` gives the ids of geometric figures by vocabulary name for the surface the film acts on.
+    ``dimensions`` gives the ids of geometric figures by vocabulary name for the surface the film acts on. ``missing``
+    names what was told to be missing, once each; ``lacks`` counts how often anything of it was asked for.
     """
 
     scope: Scope
@@ -56,6 +57,7 @@ class FilmScope:
     stream: StreamState | None = None
     situation: Situation | None = None
     missing: set[str] = field(default_factory=set)
+    lacks: int = 0
     candidates: frozenset[str] = frozenset()
     deposit_surface: tuple[str, str] | None = None
 
@@ -137,9 +139,8 @@ class FilmScope:
     def _fault_property(self, name: str) -> None:
         """A table or constants without a property that a film asks for: said once per term."""
         assert self.stream is not None
-        if name in self.missing:
+        if not self._is_first(name):
             return
-        self.missing.add(name)
         text = self.stream.fluid.text
         self.scope.collector.add(
             "property-missing",
@@ -156,8 +157,7 @@ class FilmScope:
         assert self.stream is not None
         if self.stream.saturation:
             return self.stream.saturation
-        if "saturation" not in self.missing:
-            self.missing.add("saturation")
+        if self._is_first("saturation"):
             self.scope.collector.add(
                 "stream-not-saturated",
                 self.stream.place,
@@ -386,11 +386,17 @@ class FilmScope:
         among = f" among {', '.join(need.one_of)}" if _words(need) else ""
         return self.scope.constant(f"{self.owner}/with {need.symbol}{among}", number)
 
+    def _is_first(self, name: str) -> bool:
+        """Whether something that is missing is so for the first time; it counts each time."""
+        self.lacks += 1
+        is_first = name not in self.missing
+        self.missing.add(name)
+        return is_first
+
     def report_missing(self, need: Need, example: str) -> None:
         """A figure that nothing gives: said once per term."""
-        if need.symbol in self.missing:
+        if not self._is_first(need.symbol):
             return
-        self.missing.add(need.symbol)
         self.scope.collector.add(
             "need-missing",
             self.term.place,
@@ -456,8 +462,7 @@ class FilmScope:
         return ""
 
     def _fault_flow(self, message: str, expected: str) -> None:
-        if "flow" not in self.missing:
-            self.missing.add("flow")
+        if self._is_first("flow"):
             self.scope.collector.add(
                 "flow-missing", self.term.place, f"`{self.owner}`: {message}", expected=expected
             )
@@ -656,10 +661,11 @@ class FilmScope:
         used = {bound for step in program.steps for bound in step.inputs.values()} | {program.result}
         complete = True
         for item in program.needs:
-            before = len(list(self.scope.collector))
+            before = len(list(self.scope.collector)), self.lacks
             found = self.need(item.need)
             if not found:
-                if len(list(self.scope.collector)) > before:
+                # What follows from a figure that is missing already is not missing itself.
+                if (len(list(self.scope.collector)), self.lacks) != before:
                     complete = False
                 elif item.name in used:
                     self.report_missing(item.need, f"1 {item.need.quantity.unit}")
