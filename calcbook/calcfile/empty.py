@@ -21,6 +21,16 @@ NOTHING = frozenset(
         "tobeconfirmed",
         "tobeannounced",
         "tobewritten",
+        "tofollow",
+        "later",
+        "pending",
+        "notknown",
+        "notknownyet",
+        "notstated",
+        "noneyet",
+        "nosource",
+        "seeabove",
+        "asabove",
     )
 )
 

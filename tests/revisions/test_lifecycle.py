@@ -129,10 +129,11 @@ def test_a_void_calculation_makes_its_issued_copies_void(path: Path) -> None:
     assert [issued_state(copy, now) for copy in now.issued] == ["void"]
 
 
-def test_confirmation_is_preliminary_while_anything_is_open(tmp_path: Path) -> None:
+@pytest.mark.parametrize("nothing", ["tbd", "T.B.D.", "not known yet", "see above", "later", "n/a"])
+def test_confirmation_is_preliminary_while_anything_is_open(tmp_path: Path, nothing: str) -> None:
     path = make_book(tmp_path)
     assert life(path).confirmation == "confirmed"
-    change(path, "source: vendor data sheet p. 3", "source: tbd")
+    change(path, "source: vendor data sheet p. 3", f"source: {nothing}")
     assert life(path).confirmation == "preliminary"
 
 
