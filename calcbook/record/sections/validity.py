@@ -149,15 +149,20 @@ def cross_check(page: Page) -> list[Block]:
         if len(crossed) > 1 and rows:
             governs = ", which governs" if case_name(case) == page.solved.governing else ""
             blocks.append(Heading(4, f"Case {case_name(case)}{governs}"))
-        blocks += _crossed(rows, page)
+        blocks += _crossed(case, rows, page)
     return [*blocks, *_closure(page)]
 
 
-def _crossed(rows: Sequence[CrossRow], page: Page) -> list[Block]:
-    """The other methods of one case: what those within range give, and why others are left out."""
+def _crossed(case: str, rows: Sequence[CrossRow], page: Page) -> list[Block]:
+    """The other methods of one case: what those within range give, and why others are left out.
+
+    What the base case leaves out too is counted and not listed again.
+    """
     blocks: list[Block] = []
     used = tuple(row for row in rows if not row.left_out)
-    out = tuple(row for row in rows if row.left_out)
+    listed = {(row.term, row.method) for row in page.solved.cross[""] if case and row.left_out}
+    out = tuple(row for row in rows if row.left_out and (row.term, row.method) not in listed)
+    again = sum(bool(row.left_out) for row in rows) - len(out)
     if used:
         unit = unit_text(report_unit(page.base.results["U_service"].kind, page.calculation.report))
         blocks.append(
@@ -174,7 +179,7 @@ def _crossed(rows: Sequence[CrossRow], page: Page) -> list[Block]:
                 tuple(_cross_row(row, page) for row in used),
             )
         )
-    elif out:
+    elif rows:
         blocks.append(Paragraph("No other method is within its range here."))
     if out:
         blocks += [
@@ -184,6 +189,8 @@ def _crossed(rows: Sequence[CrossRow], page: Page) -> list[Block]:
                 tuple((row.term, row.method, row.left_out) for row in out),
             ),
         ]
+    if again:
+        blocks.append(Paragraph(f"Left out as in the base case: {counted(again, 'method', 'methods')}."))
     return blocks
 
 
