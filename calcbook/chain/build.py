@@ -47,7 +47,7 @@ from calcbook.chain.types import (
 from calcbook.faults import Collector, Faults, Place, nearest_names, shown
 from calcbook.formulas import Relation, RelationFault, dimension, parse_expression
 from calcbook.library import Library, vocabulary
-from calcbook.library.cards import Limit, Method, Situation, State
+from calcbook.library.cards import Limit, Method, Situation, State, practice_limit
 from calcbook.library.conductivity import ConductivityTable
 from calcbook.quantities import DIMENSIONLESS, QuantityKind, as_kind
 
@@ -191,21 +191,16 @@ class _Builder:
         first, last = elements[0], elements[-1]
         assert isinstance(first, Group) and isinstance(last, Group)
         place = self.calculation.place
-        practice = "common practice"
-        change = Limit(
+        change = practice_limit(
             "temperature change",
-            parse_expression("dT <= abs(T_in - T_out)/2"),
+            "dT <= abs(T_in - T_out)/2",
             "caution",
             "beyond it the stated means must come from the arrangement of the flows (logarithmic mean), and one state"
             " hardly stands for the stream",
-            practice,
-            practice,
             place,
         )
-        whole = Limit(
-            "phase change", parse_expression(WHOLE_FLOW), "caution", BECAUSE, practice, practice, place
-        )
-        flow = Limit("flow", parse_expression(SOME_FLOW), "stop", NO_FLOW, practice, practice, place)
+        whole = practice_limit("phase change", WHOLE_FLOW, "caution", BECAUSE, place)
+        flow = practice_limit("flow", SOME_FLOW, "stop", NO_FLOW, place)
         checks = []
         for name, bound in results.items():
             kind, _, stream = name.partition(" ")
@@ -764,14 +759,8 @@ class _Builder:
         )
         checks: tuple[ChainCheck, ...] = ()
         if "d_i" in inputs:
-            limit = Limit(
-                "bore",
-                parse_expression("2*t < d_i"),
-                "stop",
-                "the deposit leaves a bore",
-                "common practice",
-                "common practice",
-                term.deposit.place,
+            limit = practice_limit(
+                "bore", "2*t < d_i", "stop", "the deposit leaves a bore", term.deposit.place
             )
             checks = (
                 ChainCheck(

@@ -39,7 +39,7 @@ from calcbook.chain.types import (
 from calcbook.faults import Place, shown
 from calcbook.formulas import parse_expression
 from calcbook.library import Library, vocabulary
-from calcbook.library.cards import Limit, Need
+from calcbook.library.cards import Need, practice_limit
 
 Array = np.ndarray
 OWNER, AGAIN = "duty", "duty again"
@@ -680,15 +680,7 @@ class DutyLayout:
         return self.scope.constant(f"{OWNER}/with {need.symbol}", float(need.one_of.index(word)))
 
     def _check(self, name: str, that: str, level: str, because: str, figures: Mapping[str, str]) -> None:
-        limit = Limit(
-            name.rpartition("/")[2].strip(),
-            parse_expression(that),
-            level,
-            because,
-            "common practice",
-            "common practice",
-            self.duty.place,
-        )
+        limit = practice_limit(name.rpartition("/")[2].strip(), that, level, because, self.duty.place)
         self.checks.append(ChainCheck(f"{OWNER} / {name}", OWNER, OWNER, limit, figures))
 
     def _fault(self, place: Place, message: str, expected: str) -> None:

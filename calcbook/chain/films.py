@@ -12,7 +12,7 @@ from calcbook.chain.types import ABSENT, Branch, Candidate, ChainCheck, ChainSte
 from calcbook.faults import Faults, nearest_names, shown
 from calcbook.formulas import Relation, parse_expression
 from calcbook.library import Library, Program
-from calcbook.library.cards import Limit, Method, Need, Situation
+from calcbook.library.cards import Method, Need, Situation, practice_limit
 from calcbook.library.programs import ProgramStep
 from calcbook.library.reading import choice_number, vocabulary
 from calcbook.quantities import DIMENSIONLESS, QuantityKind, unit_display
@@ -307,15 +307,7 @@ class FilmScope:
     ) -> ChainCheck:
         assert self.situation is not None
         none = self.scope.constant(f"{self.owner}/no {kind}", 0.0, vocabulary()[kind].dimension)
-        limit = Limit(
-            name,
-            parse_expression(f"{symbol} <= none"),
-            level,
-            because,
-            "common practice",
-            "common practice",
-            self.situation.where,
-        )
+        limit = practice_limit(name, f"{symbol} <= none", level, because, self.situation.where)
         return ChainCheck(
             f"{self.owner} / vapour / {name}", self.owner, "vapour", limit, {symbol: figure, "none": none}
         )

@@ -19,7 +19,7 @@ from calcbook.chain.types import ChainCheck, ChainStep, Group, Layer, Surface
 from calcbook.faults import Place, nearest_names, shown
 from calcbook.formulas import parse_expression
 from calcbook.library import Library, vocabulary
-from calcbook.library.cards import Limit, Situation
+from calcbook.library.cards import Situation, practice_limit
 
 EFFICIENCIES = {
     "annular": ("fin-annular-bessel", "fin-annular-schmidt"),
@@ -432,11 +432,8 @@ class _Series:
         return tuple(checks)
 
     def _check(self, name: str, that: str, level: str, because: str, figures: dict[str, str]) -> ChainCheck:
-        relation = parse_expression(that)
-        limit = Limit(
-            name, relation, level, because, "common practice", "common practice", self.finned.fins.place
-        )
-        inputs = {symbol: figures[symbol] for symbol in relation.symbols}
+        limit = practice_limit(name, that, level, because, self.finned.fins.place)
+        inputs = {symbol: figures[symbol] for symbol in limit.that.symbols}
         return ChainCheck(f"{self.finned.name} / fins / {name}", self.finned.name, "fins", limit, inputs)
 
     def _step(self, symbol: str, title: str, text: str, inputs: dict[str, str], kind: str) -> str:

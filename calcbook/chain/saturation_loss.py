@@ -10,7 +10,7 @@ from calcbook.chain.types import Branch, ChainCheck, Element, Group, StreamState
 from calcbook.faults import Place
 from calcbook.formulas import parse_expression
 from calcbook.library import vocabulary
-from calcbook.library.cards import Limit
+from calcbook.library.cards import practice_limit
 
 # A twentieth of the driving difference is as much as the ranges of good methods leave open (common practice).
 SMALL = "dT_sat <= 0.05*abs(T_b - T_o)"
@@ -79,12 +79,11 @@ def _of_branch(
         "temperature difference",
     )
     added = tuple(step for name, step in scope.steps.items() if name not in before)
-    practice = "common practice"
     check = ChainCheck(
         f"{branch.name} / saturation / pressure drop",
         branch.name,
         "saturation",
-        Limit("pressure drop", parse_expression(SMALL), "caution", BECAUSE, practice, practice, place),
+        practice_limit("pressure drop", SMALL, "caution", BECAUSE, place),
         {"dT_sat": loss, "T_b": branch.reference, "T_o": other},
     )
     total = replace(drop.total, steps=(*drop.total.steps, *added), checks=(*drop.total.checks, check))

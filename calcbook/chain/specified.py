@@ -14,7 +14,7 @@ from calcbook.chain.scope import Scope
 from calcbook.chain.types import CLEAN, SERVICE, ChainCheck, OpenFigure
 from calcbook.formulas import parse_expression
 from calcbook.library import vocabulary
-from calcbook.library.cards import Limit
+from calcbook.library.cards import practice_limit
 
 OWNER = "fouling"
 CLEAN_U, WHOLE, FOUND = f"{OWNER}/U clean", f"{OWNER}/R whole", f"{OWNER}/R found"
@@ -111,15 +111,7 @@ class SpecifiedFouling:
             )
 
     def _stop(self, name: str, that: str, figures: dict[str, str], because: str) -> ChainCheck:
-        limit = Limit(
-            name,
-            parse_expression(that),
-            "stop",
-            because,
-            "common practice",
-            "common practice",
-            self.specified.place,
-        )
+        limit = practice_limit(name, that, "stop", because, self.specified.place)
         return ChainCheck(f"{OWNER} / {name}", OWNER, OWNER, limit, figures)
 
     def _check_share(self) -> None:

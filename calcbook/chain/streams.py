@@ -14,7 +14,7 @@ from calcbook.chain.scope import Scope
 from calcbook.chain.types import ChainCheck, StreamState
 from calcbook.formulas import parse_expression
 from calcbook.library import Library, vocabulary
-from calcbook.library.cards import Limit
+from calcbook.library.cards import practice_limit
 from calcbook.properties import LAW_REACH, PropertyFault
 from calcbook.quantities import QuantityFault, as_kind, si_unit
 
@@ -315,7 +315,7 @@ def _tabulated(scope: Scope, text: FluidText) -> properties.Fluid:
 def viscosity_checks(scope: Scope, streams: Mapping[str, StreamState]) -> list[ChainCheck]:
     """How far a viscosity after ASTM D341 is carried beyond its two points, at the bulk of each stream."""
     kelvin = vocabulary()["temperature"].dimension
-    practice, checks = "common practice", []
+    checks = []
     for state in streams.values():
         text, owner = state.fluid.text, f"stream {state.name}"
         if not text.astm or not state.temperature:
@@ -340,9 +340,9 @@ def viscosity_checks(scope: Scope, streams: Mapping[str, StreamState]) -> list[C
                 f"more than {LAW_REACH:g} K beyond its points the law is no measurement of this liquid",
             ),
         ):
-            symbols = parse_expression(that)
-            limit = Limit(f"viscosity {name}", symbols, level, because, practice, practice, state.place)
-            inputs = {"T": state.temperature, **{one: bounds[one] for one in symbols.symbols if one != "T"}}
+            limit = practice_limit(f"viscosity {name}", that, level, because, state.place)
+            symbols = limit.that.symbols
+            inputs = {"T": state.temperature, **{one: bounds[one] for one in symbols if one != "T"}}
             checks.append(ChainCheck(f"{owner} / astm d341 / {limit.id}", owner, "astm d341", limit, inputs))
     return checks
 

@@ -10,7 +10,7 @@ from calcbook.chain.types import ChainCheck, Surface
 from calcbook.faults import Place, nearest_names, shown
 from calcbook.formulas import parse_expression
 from calcbook.library import vocabulary
-from calcbook.library.cards import Limit
+from calcbook.library.cards import practice_limit
 
 
 @dataclass(frozen=True, slots=True)
@@ -365,15 +365,7 @@ def _bundle_checks(
 
     def check(name: str, that: str, because: str, **figures: str) -> None:
         if all(figures.values()):
-            limit = Limit(
-                name,
-                parse_expression(that),
-                "stop",
-                because,
-                "common practice",
-                "common practice",
-                geometry.place,
-            )
+            limit = practice_limit(name, that, "stop", because, geometry.place)
             checks.append(ChainCheck(f"geometry / bundle / {name}", "geometry", "bundle", limit, figures))
 
     check(

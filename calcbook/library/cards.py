@@ -9,7 +9,7 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from calcbook.faults import Place
-from calcbook.formulas import Relation
+from calcbook.formulas import Relation, parse_expression
 from calcbook.quantities import QuantityKind
 
 # What a card of a film coefficient gives: the coefficient, or the Nusselt number that it follows from.
@@ -134,6 +134,12 @@ class Limit:
     source: str
     standing: str
     where: Place
+
+
+def practice_limit(name: str, that: str, level: str, because: str, where: Place) -> Limit:
+    """A limit of the trade that no card holds, for something that stands at a place of the file."""
+    practice = "common practice"
+    return Limit(name, parse_expression(that), level, because, practice, practice, where)
 
 
 @dataclass(frozen=True, slots=True)
