@@ -3,15 +3,16 @@ do."""
 
 from __future__ import annotations
 
+import math
 import re
 import tempfile
 from collections.abc import Callable, Iterable, Iterator, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import partial
 from pathlib import Path
 
 from calcbook.calcfile import read_document
-from calcbook.chain.analysis import NotConverged, analyse
+from calcbook.chain.analysis import NotConverged, analyse, is_found_later
 from calcbook.chain.build import build
 from calcbook.chain.outcome import Solved
 from calcbook.documents import Document, Mapping, Node, Scalar
@@ -74,6 +75,14 @@ class Effect:
     replaced: tuple[str, ...]
     verdicts: tuple[Verdict, ...]
     checks: tuple[Verdict, ...]
+
+
+# How the ids of the checks of a survey begin.
+OF_SURVEY = "survey /"
+NOT_HERE = (
+    "Criteria over the time in service, cleaning, the mean of places or a survey, and probabilities, are not worked out"
+    " here: change the file and run it. The verdicts below are those at the stated values."
+)
 
 
 @dataclass(frozen=True)
@@ -324,13 +333,40 @@ def _effect(side: Side, tree: Node, library: Library, replaced: Sequence[str]) -
     solved = analyse(chain, collector) if chain is not None else None
     collector.stop_if_any()
     assert solved is not None
+    before = _as_solved_here(side.solved)
     return Effect(
         side.solved,
         solved,
         tuple(replaced),
-        criteria_flips(side.solved, solved),
-        check_flips(side.solved, solved),
+        criteria_flips(before, solved),
+        check_flips(before, solved),
     )
+
+
+def _as_solved_here(solved: Solved) -> Solved:
+    """What was recorded as a replacement is solved: judged at the stated values, without what is found later."""
+    later = [is_found_later(item.result) for item in solved.chain.calculation.acceptance]
+    names = {f"criterion {number}" for number, is_later in enumerate(later, 1) if is_later}
+    cases = [
+        replace(
+            case,
+            criteria=tuple(
+                item._replace(met=item.is_met_as_stated) for item in case.criteria if item.id not in names
+            ),
+            checks=tuple(check for check in case.checks if not check.id.startswith(OF_SURVEY)),
+        )
+        for case in solved.cases
+    ]
+    return replace(solved, cases=tuple(cases))
+
+
+def _leaves_out(solved: Solved) -> bool:
+    """Whether a calculation has verdicts that a replacement does not work out."""
+    calculation = solved.chain.calculation
+    more = (
+        is_found_later(item.result) or not math.isnan(item.probability) for item in calculation.acceptance
+    )
+    return calculation.survey is not None or any(more)
 
 
 # --- cards ------------------------------------------------------------------------------------------
@@ -502,6 +538,8 @@ def _effects(found: Recall) -> list[Block]:
             for flip in (*item.effect.verdicts, *item.effect.checks)
         ]
     blocks: list[Block] = [Heading(2, f"With {found.wanted.value}"), Table(columns, tuple(rows))]
+    if any(item.effect is not None and _leaves_out(item.effect.was) for item in found.found):
+        blocks.append(Paragraph(NOT_HERE))
     if not flips:
         return [*blocks, Paragraph("No verdict and no check changes its state.")]
     return [

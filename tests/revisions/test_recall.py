@@ -170,3 +170,13 @@ def test_a_place_without_a_replacement_is_a_mistake_of_the_command_line(book: Pa
     result = CliRunner().invoke(main, ["recall", str(book), "--source", "standard 3", "--only", "R_fi"])
     assert result.exit_code == 2
     assert "--only" in result.output
+
+
+def test_verdicts_that_a_replacement_does_not_work_out_are_told_and_never_turned() -> None:
+    """HR-821 has a criterion on the time until its duty is lost: it stands neither as met nor as gone."""
+    calcs = Path(__file__).resolve().parents[2] / "calcs"
+    words = ["recall", str(calcs / "hr-821.yaml"), "--source", "LM-PS-07", "--value", "0.00005 m^2 K/W"]
+    answer = CliRunner().invoke(main, words)
+    assert answer.exit_code == 0, answer.output
+    assert "time_until_duty_lost" not in answer.output and "no criterion" not in answer.output
+    assert "are not worked out here: change the file and run it" in " ".join(answer.output.split())
