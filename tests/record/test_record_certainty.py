@@ -333,3 +333,16 @@ def test_a_stream_that_would_lose_more_pressure_than_it_has_is_an_open_item(tmp_
         r"Stream hot would lose [0-9.]+ bar of its 4 bar \(absolute\), (clean|service)\.",
         items["tube-side film/pressure lost"],
     )
+
+
+def test_a_probability_that_no_case_works_out_is_told_among_the_questions(tmp_path: Path) -> None:
+    """The samples are of the base case: in another case the criterion stands at the stated values alone."""
+    text = (CALCS / "hc-985.yaml").read_text(encoding="utf-8")
+    assert "cases:" not in text and "probability: 95 %" in text
+    path = tmp_path / "hc-985.yaml"
+    path.write_text(
+        text + "cases:\n  cool: {T_ci: {value: 23 degC, source: heat balance}}\n", encoding="utf-8"
+    )
+    record = record_text(solve_file(path))
+    row = next(line for line in record.split("\n") if "| Are the acceptance criteria met? |" in line)
+    assert "without the probability asked for: criterion 1 in case cool." in row

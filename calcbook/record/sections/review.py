@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+import math
+from collections.abc import Callable, Sequence
 
 from calcbook.chain.analysis import is_found_later, keeps_what_is_found_later
-from calcbook.chain.outcome import Solved
+from calcbook.chain.outcome import CriterionResult, Solved
 from calcbook.chain.outside import stands_in_the_open
 from calcbook.chain.types import CONDITIONS, SERVICE, Chain
 from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Quote, Table
@@ -174,7 +175,23 @@ def _criteria(page: Page) -> str:
         else ""
     )
     words = f"{len(items) - len(failed)} of {counted(len(items), 'criterion', 'criteria')} met{words}."
-    return " ".join((words, *_failed_on_day_one(page), *_not_judged(page)))
+    return " ".join(
+        (words, *_without_probability(page, items), *_failed_on_day_one(page), *_not_judged(page))
+    )
+
+
+def _without_probability(page: Page, items: Sequence[CriterionResult]) -> list[str]:
+    """The criteria that ask for a probability in cases for which none is worked out."""
+    names = [
+        f"{item.id} in case {case_name(item.case)}"
+        for item in items
+        if not math.isnan(page.calculation.criterion(item.id).probability) and math.isnan(item.reached)
+    ]
+    return (
+        [f"At the stated values alone, without the probability asked for: {', '.join(names)}."]
+        if names
+        else []
+    )
 
 
 def _failed_on_day_one(page: Page) -> list[str]:
