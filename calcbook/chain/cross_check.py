@@ -126,10 +126,9 @@ class _CrossedCase:
 
     def _turned(self, solution: Solution) -> tuple[str, ...]:
         """The ids of the criteria over results in service that have another verdict with a film's other method."""
-        stated = {criterion.text: criterion for criterion in self.chain.calculation.acceptance}
         found = []
         for item in self.case.criteria:
-            criterion = stated[item.that]
+            criterion = self.chain.calculation.criterion(item.id)
             judged = measured(self.chain, criterion.result)
             if judged is None or {condition for condition, _ in judged.parts.values()} != {SERVICE}:
                 continue

@@ -312,10 +312,10 @@ class DutyLayout:
                 f"neither the {side.open_end} nor the flow of the {name} stream is stated",
                 f"{side.open_end}: … here, or flow: … on the stream",
             )
-        elif side.open_end == "outlet":
-            self._found_outlet(name, self.results["duty"], SERVICE)
         elif side.open_end:
-            self._found_inlet(name)
+            self._found_end(name, side.open_end, self.results["duty"])
+            if side.open_end == "inlet":
+                self.results[f"T {name} inlet found"] = self.results[f"T {name} inlet"]
         elif not known:
             ends = "T_hi - T_ho" if name == "hot" else "T_co - T_ci"
             self.results[f"C {name}"] = self._step(
@@ -328,52 +328,24 @@ class DutyLayout:
                 "conductance",
             )
 
-    def _found_outlet(self, name: str, heat: str, condition: str) -> None:
-        """The step that gives an open outlet from a heat, and the open figure that agrees with it."""
-        sign = "-" if name == "hot" else "+"
+    def _found_end(self, name: str, end: str, heat: str) -> None:
+        """The step that gives an open end from a heat and the other end, and the open figure that agrees with it."""
+        known_end = "outlet" if end == "inlet" else "inlet"
+        mark, known = name[0], self.results[f"T {name} {known_end}"]
+        sign = "+" if (name == "hot") == (end == "inlet") else "-"
+        found = self._step(
+            f"{name}/{end} found",
+            f"T_{mark}{end[0]}",
+            f"{end} of {self.duty.sides[name].stream}",
+            f"T_{mark}{known_end[0]} {sign} Q/C_{mark}",
+            {f"T_{mark}{known_end[0]}": known, "Q": heat, f"C_{mark}": self.results[f"C {name}"]},
+            "found: its heat balance",
+            "temperature",
+        )
+        # An outlet lies on the way to the other inlet; nothing stands beyond an inlet.
         other = "cold" if name == "hot" else "hot"
-        found = self._step(
-            f"{name}/outlet found",
-            f"T_{name[0]}o",
-            f"outlet of {self.duty.sides[name].stream}",
-            f"T_{name[0]}i {sign} Q/C_{name[0]}",
-            {
-                f"T_{name[0]}i": self.results[f"T {name} inlet"],
-                "Q": heat,
-                f"C_{name[0]}": self.results[f"C {name}"],
-            },
-            "found: its heat balance",
-            "temperature",
-        )
-        self.open_figures.append(
-            OpenFigure(
-                self.results[f"T {name} outlet"],
-                found,
-                condition,
-                self.results[f"T {name} inlet"],
-                self.results[f"T {other} inlet"],
-            )
-        )
-
-    def _found_inlet(self, name: str) -> None:
-        """The step that gives an open inlet from the duty, and the open figure that agrees with it."""
-        sign = "+" if name == "hot" else "-"
-        outlet = self.results[f"T {name} outlet"]
-        found = self._step(
-            f"{name}/inlet found",
-            f"T_{name[0]}i",
-            f"inlet of {self.duty.sides[name].stream}",
-            f"T_{name[0]}o {sign} Q/C_{name[0]}",
-            {
-                f"T_{name[0]}o": outlet,
-                "Q": self.results["duty"],
-                f"C_{name[0]}": self.results[f"C {name}"],
-            },
-            "found: its heat balance",
-            "temperature",
-        )
-        self.results[f"T {name} inlet found"] = self.results[f"T {name} inlet"]
-        self.open_figures.append(OpenFigure(self.results[f"T {name} inlet"], found, SERVICE, outlet, outlet))
+        far = self.results[f"T {other} inlet"] if end == "outlet" else known
+        self.open_figures.append(OpenFigure(self.results[f"T {name} {end}"], found, SERVICE, known, far))
 
     def _by_effectiveness(self) -> bool:
         """No stated end gives the duty: both streams need their flow and leave their outlet open."""
@@ -436,7 +408,7 @@ class DutyLayout:
             self._changes_phase(self.results["heat reached"])
             for name in SIDES:
                 if name != self.isothermal:
-                    self._found_outlet(name, self.results["heat reached"], SERVICE)
+                    self._found_end(name, "outlet", self.results["heat reached"])
             return
         self._difference()
         driving = {"Q_d": self.results["duty"], "dT_lm": self.results["LMTD"]}

@@ -292,8 +292,7 @@ def _answers(lifecycle: Lifecycle, settings: Settings) -> tuple[tuple[int, str],
     """The words of valid sign-offs to the questions that only a person can answer, with who says so."""
     return tuple(
         (int(answer.number), f"{printed_name(settings, entry.person)}: {answer.answer}")
-        for item in lifecycle.signoffs
-        if item.validity == VALID and (entry := item.signoff) is not None
+        for entry in _valid(lifecycle)
         for answer in entry.answers
         if answer.number.isdecimal()
     )
@@ -303,11 +302,17 @@ def _remarks(lifecycle: Lifecycle, settings: Settings) -> tuple[tuple[str, str],
     """The words of valid sign-offs to what the runner decided, beyond that it is acknowledged."""
     return tuple(
         (item.id, f"{printed_name(settings, entry.person)}: {item.words}")
-        for judged in lifecycle.signoffs
-        if judged.validity == VALID and (entry := judged.signoff) is not None
+        for entry in _valid(lifecycle)
         for item in entry.acknowledged
         if item.words.casefold() != ACKNOWLEDGED
     )
+
+
+def _valid(lifecycle: Lifecycle) -> list[SignOff]:
+    """The sign-offs that hold for this content."""
+    return [
+        item.signoff for item in lifecycle.signoffs if item.validity == VALID and item.signoff is not None
+    ]
 
 
 def _line(item: Judged, settings: Settings) -> SignOffLine:

@@ -345,13 +345,14 @@ def _effect(side: Side, tree: Node, library: Library, replaced: Sequence[str]) -
 
 def _as_solved_here(solved: Solved) -> Solved:
     """What was recorded as a replacement is solved: judged at the stated values, without what is found later."""
-    later = [is_found_later(item.result) for item in solved.chain.calculation.acceptance]
-    names = {f"criterion {number}" for number, is_later in enumerate(later, 1) if is_later}
+    criterion = solved.chain.calculation.criterion
     cases = [
         replace(
             case,
             criteria=tuple(
-                item._replace(met=item.is_met_as_stated) for item in case.criteria if item.id not in names
+                item._replace(met=item.is_met_as_stated)
+                for item in case.criteria
+                if not is_found_later(criterion(item.id).result)
             ),
             checks=tuple(check for check in case.checks if not check.id.startswith(OF_SURVEY)),
         )

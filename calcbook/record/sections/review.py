@@ -169,11 +169,7 @@ def _criteria(page: Page) -> str:
     if not items:
         return "No criterion is stated: the result is for information."
     failed = [item for item in items if not item.met]
-    words = (
-        f"; not met: {', '.join(f'{item.id} in case {case_name(item.case)}' for item in failed)}"
-        if failed
-        else ""
-    )
+    words = f"; not met: {_named(failed)}" if failed else ""
     words = f"{len(items) - len(failed)} of {counted(len(items), 'criterion', 'criteria')} met{words}."
     return " ".join(
         (words, *_without_probability(page, items), *_failed_on_day_one(page), *_not_judged(page))
@@ -182,16 +178,19 @@ def _criteria(page: Page) -> str:
 
 def _without_probability(page: Page, items: Sequence[CriterionResult]) -> list[str]:
     """The criteria that ask for a probability in cases for which none is worked out."""
-    names = [
-        f"{item.id} in case {case_name(item.case)}"
+    found = [
+        item
         for item in items
         if not math.isnan(page.calculation.criterion(item.id).probability) and math.isnan(item.reached)
     ]
     return (
-        [f"At the stated values alone, without the probability asked for: {', '.join(names)}."]
-        if names
-        else []
+        [f"At the stated values alone, without the probability asked for: {_named(found)}."] if found else []
     )
+
+
+def _named(items: Sequence[CriterionResult]) -> str:
+    """Criteria with the cases that they are judged in, in words."""
+    return ", ".join(f"{item.id} in case {case_name(item.case)}" for item in items)
 
 
 def _failed_on_day_one(page: Page) -> list[str]:
@@ -264,9 +263,8 @@ def questions_for_a_person(solved: Solved) -> dict[int, str]:
     found = {place: words for place, (words, answer) in enumerate(QUESTIONS, 1) if answer is None}
     missed = [item for case in solved.cases for item in case.criteria if not item.met]
     if missed:
-        names = ", ".join(f"{item.id} in case {case_name(item.case)}" for item in missed)
         place = next(place for place, (_, answer) in enumerate(QUESTIONS, 1) if answer is _criteria)
-        found[place] = f"Not met: {names}. On what ground may the result be used as it is?"
+        found[place] = f"Not met: {_named(missed)}. On what ground may the result be used as it is?"
     return dict(sorted(found.items()))
 
 
