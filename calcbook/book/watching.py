@@ -3,7 +3,8 @@
 What a calculation rests on is taken generously, as a record made once too often costs nothing: its own file
 and sign-offs, the settings and cards of its book, the table files it names, and, where it takes a given from
 another calculation, every calculation file beside it and the issued copies of the book. Files are looked at
-by their size and time of change, again and again; a file that is being written is waited for.
+by their size and time of change, again and again. A file is read at once, and what comes of it counts only if
+nothing has changed meanwhile: one that was caught half written is read again.
 """
 
 from __future__ import annotations
@@ -24,8 +25,8 @@ from calcbook.links import ISSUED
 
 # Between two looks, in seconds: a look at a hundred files takes less than a millisecond.
 PERIOD, PERIOD_PER_FILE = 0.006, 0.0001
-# A file may be caught half written: it is read when it has not changed for so long.
-SETTLED = 0.004
+# A file caught half written has faults that are none: they are told when it has stood still for so long.
+SETTLED = 0.01
 FILE_NAMED = re.compile(r"\bfile *: *[\"']?([^\n\"',{}\[\]]+)")
 LINKED = re.compile(r"\bfrom *:")
 
@@ -74,7 +75,7 @@ class Watch:
             if item.marks and item.marks == _marks(item.marks):
                 continue
             before = item.marks
-            item.marks = _settled(item)
+            item.marks = _marks(_rests_on(item))
             if item.marks != before:
                 self._calculate(item)
 
@@ -103,8 +104,13 @@ class Watch:
             self.watched.setdefault(path, _Watched(found)).found = found
 
     def _calculate(self, item: _Watched) -> None:
+        """Calculate and tell, unless what was read changes meanwhile: the next look finds that it has."""
         self._forget_changed_cards(item.found.path.parent / HOUSE_CARDS)
         made = solved_texts(item.found)
+        if isinstance(made, Outcome):
+            time.sleep(SETTLED)
+        if item.marks != _marks(item.marks):
+            return
         if isinstance(made, Outcome):
             self.tell(made)
             return
@@ -123,17 +129,6 @@ class Watch:
         if self.cards.setdefault(house, marks) != marks:
             self.cards[house] = marks
             forget_house_cards()
-
-
-def _settled(item: _Watched) -> Marks:
-    """The marks of all that a calculation rests on, once they stand still."""
-    marks = _marks(_rests_on(item))
-    while True:
-        time.sleep(SETTLED)
-        again = _marks(_rests_on(item))
-        if again == marks:
-            return marks
-        marks = again
 
 
 def _rests_on(item: _Watched) -> Iterator[Path]:
