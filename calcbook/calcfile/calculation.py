@@ -182,7 +182,10 @@ class DutySide:
 
 @dataclass(frozen=True, slots=True)
 class Duty:
-    """What the unit has to transfer: arrangement of the flows, both streams, parts that it is cut into."""
+    """What the unit has to transfer: arrangement of the flows, both streams, parts that it is cut into.
+
+    ``installed_area`` is that of the drawing on the surface of U; None where the geometry gives it.
+    """
 
     arrangement: str
     shells: int
@@ -190,6 +193,7 @@ class Duty:
     cold: DutySide
     parts: int
     place: Place
+    installed_area: Value | None = None
 
     @property
     def sides(self) -> dict[str, DutySide]:

@@ -202,6 +202,12 @@ DUTY = Description(
         Key("hot", "the stream that cools", "mapping", of=DUTY_SIDE, required=True),
         Key("cold", "the stream that warms", "mapping", of=DUTY_SIDE, required=True),
         Key("parts", "equal parts of the duty along the unit, each with its own U", "name", example="4"),
+        Key(
+            "installed area",
+            "area of the unit on the surface of U; left out, that of the geometry",
+            "node",
+            of=SOURCED,
+        ),
     ),
 )
 STREAM = Description(
@@ -284,7 +290,7 @@ FOULING_SPECIFIED = Description(
         Key("excess surface", "U clean over U in service, less one", "node", of=SOURCED, quantity="ratio"),
         Key(
             "split",
-            "share of every open fouling term",
+            "share of every open fouling term; inside and outside stand for the only one there",
             "mapping",
             of=Description("a split", "", free=Key("<term>", "share of a fouling term", "node", of=SOURCED)),
         ),

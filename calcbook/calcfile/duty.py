@@ -33,6 +33,7 @@ def read_duty(reader: Reader) -> Duty | None:
         cold,
         _count(reader, fields, "parts"),
         node.place,
+        reader.value(fields.node("installed area")),
     )
     _check(reader, duty, fields)
     return duty

@@ -37,8 +37,8 @@ def read_specified(reader: Reader, terms: tuple[Term, ...]) -> FoulingSpecified 
     value = reader.value(fields.node(stated[0]))
     assert value is not None
     value.is_share(stated[0], reader.collector)
-    split = _split(reader, fields.node("split"))
     open_terms = [term.name for term in terms if is_open(term)]
+    split = _split(reader, fields.node("split"), _alone_on_sides(terms))
     _check_split(reader, node, split, open_terms)
     return FoulingSpecified(stated[0], value, split, node.place)
 
@@ -49,14 +49,31 @@ def is_open(term: Term) -> bool:
     return term.kind == "fouling" and not stated and term.deposit is None and term.growth is None
 
 
-def _split(reader: Reader, node: Node | None) -> dict[str, Value]:
+def _alone_on_sides(terms: tuple[Term, ...]) -> dict[str, str]:
+    """The open term of each side that has one alone: `inside` and `outside` of a split stand for them."""
+    walls = [place for place, term in enumerate(terms) if term.kind == "wall"]
+    if not walls:
+        return {}
+    sides = {
+        "inside": [term.name for term in terms[: walls[0]] if is_open(term)],
+        "outside": [term.name for term in terms[walls[-1] :] if is_open(term)],
+    }
+    called = {term.name for term in terms}
+    return {side: names[0] for side, names in sides.items() if len(names) == 1 and side not in called}
+
+
+def _split(reader: Reader, node: Node | None, sides: dict[str, str]) -> dict[str, Value]:
+    """The shares by the name of their term; the term of a side may be named by the side."""
     if not isinstance(node, MappingNode):
         return {}
-    found = {}
+    found: dict[str, Value] = {}
     for key, item in node.entries:
         value = reader.value(item)
+        name = sides.get(key.text, key.text)
+        if name in found:
+            _refuse(reader, item, f"{name} has two shares", "one share for each term")
         if value is not None:
-            found[key.text] = value
+            found[name] = value
     return found
 
 

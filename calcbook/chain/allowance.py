@@ -11,7 +11,7 @@ from calcbook.chain.types import SERVICE, Chain, Layer
 from calcbook.chain.variants import with_figures
 
 Array = np.ndarray
-LARGEST_ALLOWANCE = "largest_allowance "
+LARGEST_ALLOWANCE = "largest_allowance"
 MAXIMUM_PASSES = 40
 # The resistance that remains to be found, relative to that which the duty allows in all.
 AGREEMENT = 1e-13

@@ -1056,9 +1056,12 @@ def surfaces_at_ends(states: tuple[EndState, ...]) -> dict[str, ResultFigures]:
 def allowance_figures(
     chain: Chain, inputs: Mapping[str, Array], service: Solution, thorough: bool = True
 ) -> dict[str, ResultFigures]:
-    """The largest allowance of every fouling term as named results, found with solutions of their own."""
-    return {
-        LARGEST_ALLOWANCE + name: ResultFigures(
+    """The largest allowance of every fouling term as named results, found with solutions of their own.
+
+    That of the only term stands under the bare name too.
+    """
+    named = {
+        f"{LARGEST_ALLOWANCE} {name}": ResultFigures(
             values,
             vocabulary()["area resistance"],
             f"largest resistance of {name} with which the installed area carries the duty; below zero the resistance that"
@@ -1066,6 +1069,9 @@ def allowance_figures(
         )
         for name, values in largest_allowances(chain, inputs, service, thorough).items()
     }
+    if len(named) == 1:
+        named[LARGEST_ALLOWANCE] = next(iter(named.values()))
+    return named
 
 
 def criterion_figures(

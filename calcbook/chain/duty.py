@@ -49,6 +49,8 @@ SIDES = ("hot", "cold")
 # Balances of plant data close within these parts of the duty; beyond the first the flows or temperatures are
 # not those of one state, beyond the second they cannot be rated.
 CLOSURE_CAUTION, CLOSURE_RANGE = "0.05", "0.1"
+# An area that is rounded, or counted without the tube sheets, agrees with its geometry this well: common practice.
+SAME_AREA = "0.05"
 EFFECTIVENESS = {
     "counterflow": "effectiveness-counterflow",
     "parallel flow": "effectiveness-parallel-flow",
@@ -400,7 +402,7 @@ class DutyLayout:
         if not self._streams_have_films(elements):
             return
         overall = circuit["U"]
-        self.results["area installed"] = area
+        area = self.results["area installed"] = self._installed(area)
         if not self.is_by_effectiveness:
             self._changes_phase(self.results["duty"])
         else:
@@ -451,6 +453,20 @@ class DutyLayout:
         )
         self._reached(overall, area)
         self._second_way(area)
+
+    def _installed(self, area: str) -> str:
+        """The stated area of the unit, held against that of the geometry; the latter where none is stated."""
+        if self.duty.installed_area is None:
+            return area
+        stated = self.scope.value(self.duty.installed_area, "area", OWNER, "installed area")
+        self._check(
+            "area / installed",
+            f"abs(A_inst/A_geo - 1) <= {SAME_AREA}",
+            "caution",
+            "the films are worked out in a geometry of another area than the stated one",
+            {"A_inst": stated, "A_geo": area},
+        )
+        return stated
 
     def _changes_phase(self, heat: str) -> None:
         """The flow of the saturated stream that the heat needs, beside the stated one."""

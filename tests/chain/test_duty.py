@@ -259,6 +259,36 @@ def test_the_largest_allowance_leaves_no_margin(tmp_path: Path) -> None:
     assert figure(again, "area_margin") == pytest.approx(0.0, abs=1e-12)
 
 
+def test_the_only_allowance_needs_no_name(tmp_path: Path) -> None:
+    """The result name of the list without a term stands for that of the only term."""
+    answer = solved(tmp_path, length="900 m")
+    results = answer.base.results
+    (named,) = [name for name in results if name.startswith("largest_allowance ")]
+    assert results["largest_allowance"].value == results[named].value
+
+
+def test_a_stated_area_is_what_carries_the_duty(tmp_path: Path) -> None:
+    """A_inst/A_req − 1 with the stated area; U, and so the area needed, stay those of the geometry."""
+    path = tmp_path / "rt-1.yaml"
+    text = FILE.format(**{**KREITH, "length": "900 m"})
+    path.write_text(text, encoding="utf-8")
+    own = solve_file(path)
+    stated = 1.2 * figure(own, "area_installed")
+    path.write_text(
+        text.replace("duty:\n", f"duty:\n  installed area: {{value: {stated!r} m^2, source: s}}\n", 1),
+        encoding="utf-8",
+    )
+    answer = solve_file(path)
+    assert figure(answer, "area_installed") == pytest.approx(stated, rel=1e-14)
+    assert figure(answer, "area_service") == pytest.approx(figure(own, "area_service"), rel=1e-14)
+    assert figure(answer, "area_margin") == pytest.approx(
+        stated / figure(own, "area_service") - 1.0, rel=1e-12
+    )
+    states = {check.id: check.state for check in answer.base.checks}
+    assert states["duty / area / installed"] == "outside"
+    assert answer.rating.ledger_sum == pytest.approx(stated, rel=1e-12)
+
+
 def test_a_unit_that_is_too_small_has_an_allowance_below_zero(tmp_path: Path) -> None:
     answer = solved(tmp_path, length="300 m")
     assert figure(answer, "area_margin") < 0.0
@@ -379,10 +409,14 @@ def test_a_method_factor_has_its_own_line_in_the_ledger() -> None:
 
 
 @pytest.mark.parametrize(
-    ("way", "value", "ratio"), [("cleanliness", "80 %", 0.8), ("excess surface", "60 %", 1 / 1.6)]
+    ("way", "value", "ratio", "inner_share", "outer_share"),
+    [
+        ("cleanliness", "80 %", 0.8, "tube-side deposit", "shell-side deposit"),
+        ("excess surface", "60 %", 1 / 1.6, "inside", "outside"),
+    ],
 )
 def test_a_specified_fouling_is_met_though_films_move_with_it(
-    tmp_path: Path, way: str, value: str, ratio: float
+    tmp_path: Path, way: str, value: str, ratio: float, inner_share: str, outer_share: str
 ) -> None:
     """By definition U_service/U_clean, or 1/(1 + excess surface); the tube-side film follows its surface here."""
     text = (
@@ -391,7 +425,7 @@ def test_a_specified_fouling_is_met_though_films_move_with_it(
     path = tmp_path / "rt-2.yaml"
     path.write_text(
         f"{text}fouling specified as:\n  {way}: {{value: {value}, source: s}}\n"
-        "  split: {tube-side deposit: {value: 40 %, source: s}, shell-side deposit: {value: 60 %, source: s}}\n",
+        f"  split: {{{inner_share}: {{value: 40 %, source: s}}, {outer_share}: {{value: 60 %, source: s}}}}\n",
         encoding="utf-8",
     )
     answer = solve_file(path)

@@ -33,7 +33,7 @@ def brief_rows(page: Page) -> list[tuple[str, str, str]]:
     rows = _arrangement(page)
     for name, title, basis in (
         ("duty", "Duty", _duty_basis(page)),
-        ("area_installed", "Installed area", f"on the surface {page.basis}"),
+        ("area_installed", "Installed area", _installed_basis(page)),
         ("area_service", "Area that the duty needs in service", "Q/(U_service·ΔT_mean)"),
         ("area_clean", "Area that the duty needs clean", "Q/(U_clean·ΔT_mean)"),
         (
@@ -55,6 +55,12 @@ def brief_rows(page: Page) -> list[tuple[str, str, str]]:
     if margin is not None:
         rows.append(("Margin of area over the duty", percent(margin.value), "A_installed/A_service − 1"))
     return rows
+
+
+def _installed_basis(page: Page) -> str:
+    duty = page.calculation.duty
+    stated = duty is not None and duty.installed_area is not None
+    return f"on the surface {page.basis}, {'as stated' if stated else 'from the geometry'}"
 
 
 def _arrangement(page: Page) -> list[tuple[str, str, str]]:
