@@ -38,12 +38,16 @@ class Link:
     on: str = ""
 
 
+# How the results of a survey begin: resistances of all deposits of a unit together, and how they grow.
+OF_A_SURVEY = ("allowance_", "fitted ")
+
+
 def surface_of(result: str, basis: str) -> str:
     """The surface that a result counts on, by its name: ``basis`` for most; empty where it counts on none or its own."""
     name, _, surface = result.partition(" on ")
     if name in ("U_service", "U_clean"):
         return surface or basis
-    return basis if result.startswith(("allowance_", "R ")) else ""
+    return basis if result.startswith(("R ", *OF_A_SURVEY)) else ""
 
 
 def number_of(root: Node) -> str:

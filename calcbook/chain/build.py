@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from dataclasses import replace
 
 from calcbook.calcfile import Calculation
@@ -19,6 +19,7 @@ from calcbook.chain.gaps import lay_out_gap
 from calcbook.chain.growth import Grown, GrownDeposit, lay_out_growth, lay_out_thickness
 from calcbook.chain.in_service import lay_out_in_service
 from calcbook.chain.latent import BECAUSE, NO_FLOW, PHASE_CHANGE, SOME_FLOW, WHOLE_FLOW
+from calcbook.chain.linked import check_linked_resistances
 from calcbook.chain.petroleum import lay_out_cards
 from calcbook.chain.pressure import asked_symbols, lay_out_pressure_drop
 from calcbook.chain.saturation_loss import with_saturation_losses
@@ -122,7 +123,8 @@ class _Builder:
             else None
         )
         self._check_temperatures(elements)
-        self._linked_surfaces(terms, elements, shape)
+        surfaces = {element.name: shape.surfaces[element.surface].name for element in elements or ()}
+        check_linked_resistances(scope, terms, surfaces, calculation.givens)
         self._assumptions_of_engineer()
         check_services(calculation, self.collector)
         if self.collector or basis is None or elements is None:
@@ -139,24 +141,6 @@ class _Builder:
         else:
             self.checks += self._heat_balance(elements, results, laid_out.streams)
         return self._finished(elements, shape, basis, circuit, results) if not self.collector else None
-
-    def _linked_surfaces(
-        self, terms: Sequence[Term], elements: Sequence[Element] | None, shape: Shape
-    ) -> None:
-        """That a resistance taken from another calculation acts on the surface that it counts on there."""
-        surfaces = {element.name: shape.surfaces[element.surface].name for element in elements or ()}
-        for term in terms:
-            value = term.values.get("resistance")
-            given = self.calculation.givens.get(value.symbol) if value is not None else None
-            link = given.link if given is not None else None
-            here = surfaces.get(term.name, "")
-            if link is not None and link.on and here and link.on != here:
-                self.scope.open(
-                    f"{term.name}/linked surface",
-                    "link",
-                    f"{term.name} takes {link.result} from {link.calculation}, which counts on the surface"
-                    f" {link.on} there, and acts on {here}: the same deposit has another resistance on it.",
-                )
 
     def _rated(
         self,

@@ -3,9 +3,11 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import NamedTuple
 
+from calcbook.formulas import Relation
 from calcbook.quantities import QuantityKind
 
 
@@ -92,6 +94,41 @@ class PlotColumn(NamedTuple):
     cleaned: bool
 
 
+class Reading(NamedTuple):
+    """A cell of the history as it stands there, the given that it is a figure of, its column and unit."""
+
+    symbol: str
+    head: str
+    cell: str
+    unit: str
+
+
+class RowFigure(NamedTuple):
+    """A figure of one row, in SI with its unit. ``relation`` gives it from ``values`` by symbol; None for the chain's."""
+
+    symbol: str
+    title: str
+    value: float
+    unit: str
+    relation: Relation | None = None
+    values: Mapping[str, float] = {}
+
+
+class WorkedRow(NamedTuple):
+    """One row on its way: what was read, what the chain makes of it, the steps to its resistance.
+
+    ``offset`` is that of its ``cleaning``, which is taken from the resistance before the fit, m² K/W.
+    """
+
+    number: int
+    time: str
+    readings: tuple[Reading, ...]
+    chain: tuple[RowFigure, ...]
+    steps: tuple[RowFigure, ...]
+    cleaning: str
+    offset: float
+
+
 class SurveyOutcome(NamedTuple):
     """Everything a survey says.
 
@@ -99,7 +136,8 @@ class SurveyOutcome(NamedTuple):
     ``not_anchored``. ``negative`` and ``not_resolved`` count among the fitted rows. ``period`` is the longest
     time since a cleaning that rows cover, in s. ``deviation`` is the standard deviation of the rows about
     the fit, ``correlation`` that of neighbouring residuals; ``is_determined`` is False where the search did not come to
-    rest or the rows do not tell the parameters apart. ``row_relations`` make the resistance of a row.
+    rest or the rows do not tell the parameters apart. ``row_relations`` make the resistance of a row; ``worked`` is one
+    of those fitted.
     """
 
     file: str
@@ -122,6 +160,7 @@ class SurveyOutcome(NamedTuple):
     model_title: str
     relation: str
     row_relations: str
+    worked: WorkedRow
     figures: tuple[FittedFigure, ...]
     parts: tuple[SystematicPart, ...]
     without_accuracy: tuple[str, ...]

@@ -17,17 +17,20 @@ from calcbook.chain.findings import figures_to_hold
 from calcbook.chain.samples import Samples, mark_derived
 from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.solve import PIECE, Solution, solve
+from calcbook.chain.survey_outcome import RowFigure
 from calcbook.chain.types import CLEAN, Chain, ChainCheck
-from calcbook.formulas import evaluate, parse_expression, write
+from calcbook.formulas import dimension, evaluate, parse_expression, write
 from calcbook.library.cards import Assignment, Limit
 from calcbook.library.operations import RelationOperation, Slopes, run
 from calcbook.library.programs import Program, ProgramLimit, ProgramStep
+from calcbook.quantities import DIMENSIONLESS, si_unit
 
 Array = np.ndarray
 CARD = "fouling-from-plant-data"
 HOT, COLD, ONE_SIDE = "duty/hot/Q", "duty/cold/Q", "duty/Q"
 # What passes the wall of the hot stream's heat, where a part x of it goes to the surroundings.
-PASSES = parse_expression("Q_h*(1 - x)")
+PASSES = parse_expression("Q_hot*(1 - x)")
+STREAM_HEAT = "Q_h of the stream"
 LOSS = "heat loss"
 ONE = np.ones(())
 
@@ -88,16 +91,14 @@ def _way(chain: Chain) -> _Way:
     known = {step.id for step in (*chain.steps, *chain.circuit)}
     one = next(name for name in (HOT, COLD, ONE_SIDE) if name in known)
     bound = {
-        "Q_h of the stream": HOT if HOT in known else one,
+        STREAM_HEAT: HOT if HOT in known else one,
         "Q_c": COLD if COLD in known else one,
         "A": chain.results["area installed"],
         "F": chain.results.get("F", ""),
         "LMTD": chain.results["LMTD"],
         "U_c": chain.results["U"],
     }
-    loses = ProgramStep(
-        "Q_h", "Q_h", CARD, "", RelationOperation(PASSES), {"Q_h": "Q_h of the stream", "x": "x"}
-    )
+    loses = ProgramStep("Q_h", "Q_h", CARD, "", RelationOperation(PASSES), {"Q_hot": STREAM_HEAT, "x": "x"})
     return _Way(program, (loses, *program.steps), bound, HOT in known and COLD in known)
 
 
@@ -135,6 +136,39 @@ def resistances(chain: Chain, columns: Mapping[str, Array], loss: float) -> Foun
         solution.converged = solution.converged & (states.missing == 0)
         found.append(_found(way, limits, solution, loss, size))
     return joined(found)
+
+
+def worked(
+    chain: Chain, columns: Mapping[str, Array], loss: float
+) -> tuple[tuple[RowFigure, ...], tuple[RowFigure, ...]]:
+    """One row (columns of one figure): what its resistance takes from the chain, and every step to it."""
+    way = _way(chain)
+    solution = solve(
+        chain, inputs_of(chain, columns), CLEAN, keep={name for name in way.bound.values() if name}
+    )
+    values = way.values(solution, loss, 1)
+    with np.errstate(all="ignore"):
+        run(way.steps, values)
+    needs = {item.name: item.need for item in way.program.needs}
+    kinds = {name: need.quantity for name, need in needs.items()} | {STREAM_HEAT: needs["Q_h"].quantity}
+    symbols = {name: needs[name].symbol if name in needs else "Q_hot" for name in way.bound}
+    taken = tuple(
+        RowFigure(symbols[name], kinds[name].meaning, float(values[name].ravel()[0]), kinds[name].unit)
+        for name in way.bound
+    )
+    dimensions = {name: kind.dimension for name, kind in kinds.items()} | {"x": DIMENSIONLESS}
+    dimensions |= way.program.constant_dimensions
+    steps = []
+    for step in way.steps:
+        assert isinstance(step.operation, RelationOperation)
+        relation = step.operation.relation
+        dimensions[step.name] = dimension(
+            relation, {one: dimensions[name] for one, name in step.inputs.items()}
+        )
+        put_in = {one: float(np.ravel(values[name])[0]) for one, name in step.inputs.items()}
+        value, unit = float(np.ravel(values[step.name])[0]), si_unit(dimensions[step.name])
+        steps.append(RowFigure(step.symbol, "", value, unit, relation, put_in))
+    return taken, tuple(steps)
 
 
 def _found(way: _Way, limits: tuple[_RangeLimit, ...], solution: Solution, loss: float, count: int) -> Found:

@@ -65,15 +65,21 @@ class Sieve:
     rules: list[RuleCount] = field(default_factory=list)
     not_compared: int = 0
 
-    def reject(self, name: str, rejects: str, limit: str, broken: Array | None) -> None:
-        """Apply a rule: the rows left that ``broken`` marks. None: it is not applied, ``limit`` may say why."""
+    def reject(self, name: str, rejects: str, limit: str, broken: Array | Mapping[str, Array] | None) -> None:
+        """Apply a rule: the rows left that ``broken`` marks, in all or by what breaks it. None: it is not applied,
+        ``limit`` may say why."""
         if broken is None:
             self.rules.append(RuleCount(name, rejects, limit or NOT_APPLIED, 0, ""))
             return
-        found = self.left & broken
+        parts = broken if isinstance(broken, Mapping) else {"": broken}
+        found = self.left & np.any(list(parts.values()), axis=0) if parts else np.zeros_like(self.left)
         self.left = self.left & ~found
         count = int(np.count_nonzero(found))
-        first = f"row {int(self.rows.numbers[found].min())}" if count else ""
+        first = ""
+        if count:
+            place = min(np.flatnonzero(found), key=lambda row: int(self.rows.numbers[row]))
+            what = next(part for part, marks in parts.items() if marks[place])
+            first = f"row {int(self.rows.numbers[place])}" + (f", {what}" if what else "")
         self.rules.append(RuleCount(name, rejects, limit, count, first))
 
 
@@ -100,7 +106,7 @@ def sift(rows: Rows, survey: Survey, ends: Ends, givens: Mapping[str, Input]) ->
         "what it can be",
         "a figure that the quantity of its given cannot have",
         "; ".join(_can_be(givens[symbol]) for symbol in survey.columns),
-        _impossible(rows, givens),
+        _impossible(rows, survey, givens),
     )
     for symbol, column in survey.columns.items():
         figures = rows.columns[symbol]
@@ -136,11 +142,11 @@ def _can_be(item: Input) -> str:
     return f"{item.symbol} {'a whole number, ' if kind.whole else ''}{words}"
 
 
-def _impossible(rows: Rows, givens: Mapping[str, Input]) -> Array:
-    broken = np.zeros(len(rows), dtype=bool)
-    for symbol, figures in rows.columns.items():
-        broken |= ~np.asarray(givens[symbol].kind.allowed(figures))
-    return broken
+def _impossible(rows: Rows, survey: Survey, givens: Mapping[str, Input]) -> dict[str, Array]:
+    return {
+        survey.columns[symbol].head: ~np.asarray(givens[symbol].kind.allowed(figures))
+        for symbol, figures in rows.columns.items()
+    }
 
 
 def _first_unreadable(rows: Rows, survey: Survey) -> str:
@@ -151,8 +157,13 @@ def _first_unreadable(rows: Rows, survey: Survey) -> str:
     }
     wrong = {head: rows.numbers[~np.isfinite(figures)] for head, figures in heads.items()}
     row, head = min((int(numbers.min()), head) for head, numbers in wrong.items() if len(numbers))
-    cell = survey.history.columns[head].split("\n")[row - 1]
+    cell = cell_of(survey, head, row)
     return f"row {row}, {head}: {shown(cell) if cell else 'empty'}"
+
+
+def cell_of(survey: Survey, head: str, row: int) -> str:
+    """A cell of the history as it stands there."""
+    return survey.history.columns[head].split("\n")[row - 1]
 
 
 def _repeated(sieve: Sieve) -> Array:
@@ -163,12 +174,12 @@ def _repeated(sieve: Sieve) -> Array:
     return broken
 
 
-def _crossed(rows: Rows, ends: Ends, reference: Mapping[str, float]) -> Array:
-    broken = np.zeros(len(rows), dtype=bool)
+def _crossed(rows: Rows, ends: Ends, reference: Mapping[str, float]) -> dict[str, Array]:
+    found = {}
     for one, other in ends.hotter:
         hot, cold = (rows.columns.get(symbol, reference[symbol]) for symbol in (one, other))
-        broken |= ~np.asarray(hot > cold)
-    return broken
+        found[f"{one} not above {other}"] = np.broadcast_to(~np.asarray(hot > cold), len(rows))
+    return found
 
 
 def _reject_unsteady(sieve: Sieve, survey: Survey, ends: Ends) -> None:
@@ -180,13 +191,12 @@ def _reject_unsteady(sieve: Sieve, survey: Survey, ends: Ends) -> None:
         return
     places = np.flatnonzero(sieve.left)
     times = sieve.rows.times[places]
-    moved = np.zeros(max(len(places) - 1, 0))
+    near = np.diff(times) <= (gap.value if gap is not None else np.inf)
+    broken = {}
     for symbol in ends.symbols:
         if symbol in sieve.rows.columns:
-            moved = np.maximum(moved, np.abs(np.diff(sieve.rows.columns[symbol][places])))
-    near = np.diff(times) <= (gap.value if gap is not None else np.inf)
-    broken = np.zeros(len(sieve.rows), dtype=bool)
-    broken[places[1:]] = near & (moved > limit.value)
+            marks = broken[survey.columns[symbol].head] = np.zeros(len(sieve.rows), dtype=bool)
+            marks[places[1:]] = near & (np.abs(np.diff(sieve.rows.columns[symbol][places])) > limit.value)
     sieve.not_compared = len(places) - int(np.count_nonzero(near)) if len(places) else 0
     sieve.reject(name, rejects, f"at most {limit.text}", broken)
 

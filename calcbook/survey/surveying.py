@@ -18,8 +18,10 @@ from calcbook.chain.survey_outcome import (
     FittedFigure,
     Gap,
     PlotColumn,
+    Reading,
     SurveyOutcome,
     SystematicPart,
+    WorkedRow,
 )
 from calcbook.chain.types import CLEAN, Chain, ChainCheck, OpenItem
 from calcbook.faults import Collector
@@ -30,9 +32,9 @@ from calcbook.quantities import QuantityKind
 from calcbook.survey.bounds import NORMAL_95, Part, normal_quantile, parts_of
 from calcbook.survey.fitting import Data, Fit, fit, sample
 from calcbook.survey.growth import GrowthModel, growth_model
-from calcbook.survey.resistance import CARD, Found, relations_of, resistances, slopes
+from calcbook.survey.resistance import CARD, Found, relations_of, resistances, slopes, worked
 from calcbook.survey.rows import Rows, moment_text, read_rows
-from calcbook.survey.rules import UNREADABLE, Ends, Sieve, sift
+from calcbook.survey.rules import UNREADABLE, Ends, Sieve, cell_of, sift
 
 Array = np.ndarray
 # Slopes are taken at so many rows, spread evenly over all: what is wrong in every row alike moves neighbours alike.
@@ -229,6 +231,7 @@ class _Survey:
         resistances = found.data.anchored(found.data.values) + found.data.zero_means(curve)[found.data.cycles]
         unsure = self.row_uncertainty(found, parts, chosen)
         model = found.model
+        cycles = self.cycle_rows(kept, found, parts, chosen)
         return SurveyOutcome(
             file=self.survey.file,
             source=self.survey.source,
@@ -244,12 +247,13 @@ class _Survey:
             first=moment_text(float(kept.times[0]), self.survey),
             last=moment_text(float(kept.times[-1]), self.survey),
             rules=tuple(sieve.rules),
-            cycles=self.cycle_rows(kept, found, parts, chosen),
+            cycles=cycles,
             gaps=self.gaps(kept),
             model=model.card.id,
             model_title=model.card.title,
             relation=model.relation,
             row_relations=relations_of(self.chain),
+            worked=self.worked_row(rows, kept, int(fitted[-1]), cycles),
             figures=figures,
             parts=told_parts,
             without_accuracy=tuple(without),
@@ -261,6 +265,25 @@ class _Survey:
             after=self.survey.proposal.after.value,
             percentile=self.survey.proposal.percentile.value,
             plot=self.plot(kept, fitted, resistances, curve),
+        )
+
+    def worked_row(self, rows: Rows, kept: _Kept, place: int, cycles: tuple[CycleRow, ...]) -> WorkedRow:
+        """One kept row, from its readings to its resistance."""
+        columns = {symbol: figures[place : place + 1] for symbol, figures in kept.columns.items()}
+        taken, steps = worked(self.chain, columns, self.loss)
+        cycle = cycles[kept.cycles[place]]
+        number = int(rows.numbers[kept.places[place]])
+        return WorkedRow(
+            number,
+            moment_text(float(kept.times[place]), self.survey),
+            tuple(
+                Reading(symbol, column.head, cell_of(self.survey, column.head, number), column.unit)
+                for symbol, column in self.survey.columns.items()
+            ),
+            taken,
+            steps,
+            cycle.cleaning,
+            cycle.offset,
         )
 
     def gaps(self, kept: _Kept) -> tuple[Gap, ...]:

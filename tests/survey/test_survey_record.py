@@ -103,6 +103,68 @@ def test_another_calculation_takes_the_proposed_allowance(tmp_path: Path, rows: 
     assert [item.kind for item in taken.open_items] == ["link"]
 
 
+GROWING = TAKING.replace(
+    "  R_fo: {from: {calculation: T-105, result: allowance_proposed}, is: allowance of the survey}\n",
+    "  R_fo: {from: {calculation: T-105, result: fitted R_inf}, is: final resistance of the survey}\n"
+    "  tau: {from: {calculation: T-105, result: fitted tau}, is: its time constant}\n"
+    "  R_fi: {value: 0.0001 m^2 K/W, is: tube-side allowance, source: test}\n",
+).replace(
+    "  - {name: deposit, kind: fouling, resistance: R_fo, on: outside}\n",
+    "  - name: deposit\n    kind: fouling\n    on: outside\n"
+    "    growth: {model: kern-seaton-1959, R_inf: R_fo, tau: tau, after: {value: 9 months, source: test}}\n",
+)
+
+
+def test_what_is_of_all_deposits_stands_for_all(tmp_path: Path, rows: list[list[str]]) -> None:
+    """1/U − 1/U_c holds every deposit of both sides (definition): beside another it would count twice, and it is
+    on the surface of its own U."""
+    solved_survey(tmp_path, rows)
+    path = tmp_path / "fed.yaml"
+    path.write_text(GROWING, encoding="utf-8")
+    assert not [item for item in solve_file(path).open_items if item.kind == "link" and "deposit/" in item.id]
+    film = "  - {name: tube wall"
+    inside = "  - {name: tube deposit, kind: fouling, resistance: R_fi, on: inside}\n"
+    path.write_text(GROWING.replace(film, inside + film), encoding="utf-8")
+    items = {item.id: item.text for item in solve_file(path).open_items}
+    assert "stands beside tube deposit here" in items["deposit/all deposits"]
+    path.write_text(
+        GROWING.replace(film, inside.replace("R_fi", "{value: 0 m^2 K/W, source: test}") + film),
+        encoding="utf-8",
+    )
+    assert "deposit/all deposits" not in {item.id for item in solve_file(path).open_items}
+    path.write_text(GROWING.replace("on: outside\n    growth", "on: inside\n    growth"), encoding="utf-8")
+    items = {item.id: item.text for item in solve_file(path).open_items}
+    assert "counts on the surface outside there, and acts on inside" in items["deposit/linked surface"]
+
+
+def test_the_worked_row_is_that_of_a_plain_calculation_with_its_readings(
+    tmp_path: Path, rows: list[list[str]]
+) -> None:
+    """U clean of the same file with the readings as givens, and the definitions of R_f, closure and LMTD by hand."""
+    outcome = solved_survey(tmp_path, rows).survey
+    assert outcome is not None
+    row = outcome.worked
+    cooler = COOLER
+    for reading in row.readings:
+        cooler = re.sub(
+            rf"(  {reading.symbol}: +\{{value: )[^,]*,", rf"\g<1>{reading.cell} {reading.unit},", cooler
+        )
+    alone = tmp_path / "alone.yaml"
+    alone.write_text(cooler, encoding="utf-8")
+    results = solve_file(alone).base.results
+    chain = {one.symbol: one.value for one in row.chain}
+    assert chain["U_c"] == pytest.approx(results["U_clean"].value, rel=1e-12)
+    assert chain["LMTD"] == pytest.approx(results["LMTD"].value, rel=1e-12)
+    steps = {one.symbol: one.value for one in row.steps}
+    hot = chain["Q_hot"] * (1.0 - 0.01)
+    assert steps["closure"] == pytest.approx(2 * (hot - chain["Q_c"]) / (hot + chain["Q_c"]), rel=1e-10)
+    heat = 0.5 * (hot + chain["Q_c"])
+    by_hand = chain["A"] * chain["F"] * chain["LMTD"] / heat - 1.0 / chain["U_c"]
+    assert steps["R_f"] == pytest.approx(by_hand, rel=1e-12)
+    text = section(record_text(solve_file(tmp_path / "trial.yaml")))
+    assert f"row {row.number} of {row.time}" in text
+
+
 def test_a_proposal_beyond_the_rows_is_a_caution(tmp_path: Path, rows: list[list[str]]) -> None:
     within = solved_survey(tmp_path, rows)
     # The longest time since a cleaning is 205 days: 9 months are within 1.5 of it, 11 months are not.

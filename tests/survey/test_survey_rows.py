@@ -79,7 +79,7 @@ def test_a_figure_that_its_quantity_cannot_have_is_rejected(
     assert counts(outcome)["what it can be"] == 2
     assert adds_up(outcome)
     (rule,) = [rule for rule in outcome.rules if rule.id == "what it can be"]
-    assert rule.first == "row 31" and "m_hot zero or above" in rule.limit
+    assert rule.first == "row 31, FI-1111" and "m_hot zero or above" in rule.limit
 
 
 def test_a_column_of_temperatures_wants_a_given_that_is_one(tmp_path: Path, whole: list[list[str]]) -> None:

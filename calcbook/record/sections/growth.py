@@ -72,14 +72,19 @@ def time_blocks(page: Page) -> list[Block]:
     if found.failed:
         blocks.append(Paragraph(f"{counted(found.failed, 'row has', 'rows have')} no answer of the circuit."))
     blocks.append(Paragraph(_duty_sentence(page, found)))
-    blocks += _turns(found)
+    blocks += _turns(page, found)
     return blocks + (_interval(page, found, found.interval) if found.interval is not None else [])
 
 
-def _turns(found: OverTime) -> list[Block]:
+def _turns(page: Page, found: OverTime) -> list[Block]:
     """The verdicts at the stated ends that turn on the way."""
+    alone = (
+        ""
+        if len(page.solved.cases) == 1
+        else " The table is that of the base case; other cases are not followed."
+    )
     if not found.turns:
-        return [Paragraph("No criterion, limit, method or controlling term turns within the table.")]
+        return [Paragraph(f"No criterion, limit, method or controlling term turns within the table.{alone}")]
     rows = tuple(
         (
             turn.id,
@@ -91,7 +96,7 @@ def _turns(found: OverTime) -> list[Block]:
         for turn in found.turns
     )
     return [
-        Paragraph("Verdicts at the stated ends that turn on the way, in the order of their times:"),
+        Paragraph(f"Verdicts at the stated ends that turn on the way, in the order of their times.{alone}"),
         Table(("Verdict", "Kind", "Before", "Then", "From"), rows),
     ]
 
@@ -244,6 +249,9 @@ def _remarks(page: Page, found: OverTime, interval: Interval) -> tuple[str, ...]
         lines.append(
             f"The duty is lost before, after {_time(found, found.duty_lost)}: the interval does not carry it."
         )
+    elif math.isfinite(found.duty_lost):
+        spare = found.duty_lost - interval.interval
+        lines.append(f"A cleaning may be late by {_time(found, spare)}: then the duty is lost.")
     if interval.interval < SHORT_RUN * interval.values["t_c"]:
         lines.append(
             "The run is shorter than two cleanings: the unit is out of service a third of the time and more."

@@ -4,7 +4,8 @@ from __future__ import annotations
 
 import math
 
-from calcbook.chain.survey_outcome import FittedFigure, PlotColumn, SurveyOutcome, SystematicPart
+from calcbook.chain.survey_outcome import FittedFigure, PlotColumn, SurveyOutcome, SystematicPart, WorkedRow
+from calcbook.formulas import write, write_with_values
 from calcbook.formulas.names import written_name
 from calcbook.quantities import in_unit, unit_factor
 from calcbook.record.blocks import Block, Bullets, Code, Heading, Paragraph, Table
@@ -88,10 +89,46 @@ def _rows(outcome: SurveyOutcome) -> list[Block]:
     )
     relations = (
         "Each row kept goes through the chain above, clean, at its own flows and temperatures:"
-        f" {outcome.row_relations}, where x is the heat loss."
+        f" {outcome.row_relations}, where Q_hot is what the hot stream gives and x the heat loss. R_f is that of all"
+        " deposits of both sides together; where another calculation takes it, it stands for all of them."
     )
     many = [Paragraph(f"Caution: {line}") for line in _many_rejected(outcome)]
-    return [Paragraph(words), table, *many, Paragraph(more), *_gaps(outcome), Paragraph(relations)]
+    return [
+        Paragraph(words),
+        table,
+        *many,
+        Paragraph(more),
+        *_gaps(outcome),
+        Paragraph(relations),
+        *_worked(outcome.worked),
+    ]
+
+
+def _worked(row: WorkedRow) -> list[Block]:
+    """One row from its readings to the resistance that is fitted."""
+    words = (
+        f"The last row that is fitted, worked through: row {row.number} of {row.time}. A case of this calculation with the"
+        " readings as its givens gives the figures of the chain, clean."
+    )
+    lines = [(written_name(one.symbol), one.head, "", one.cell, unit_text(one.unit)) for one in row.readings]
+    lines += [
+        (written_name(one.symbol), f"{one.title}, of the chain", "", number(one.value), unit_text(one.unit))
+        for one in row.chain
+    ]
+    for one in row.steps:
+        assert one.relation is not None
+        text = number(one.value)
+        put_in = write_with_values(one.relation, one.values, text)
+        lines.append((written_name(one.symbol), write(one.relation), put_in, text, unit_text(one.unit)))
+    last = row.steps[-1].value
+    offset = (
+        f"Less the offset {number(row.offset)} m²·K/W of the cleaning of {row.cleaning}, it stands"
+        f" {number(last - row.offset)} m²·K/W above zero."
+    )
+    return [
+        Paragraph(words),
+        Table(("Figure", "Meaning or relation", "Values put in", "Value", "Unit"), tuple(lines), (offset,)),
+    ]
 
 
 def survey_cautions(outcome: SurveyOutcome) -> list[str]:
