@@ -174,3 +174,7 @@ class Uncertainty(NamedTuple):
     exact_allowances: tuple[str, ...]
     sampling: Sampling | None = None
     elsewhere: tuple[Spread, ...] = ()
+
+    def spread(self, case: str, result: str) -> Spread | None:
+        """First order of a result in a case that is not the assessed one; None where none is worked out."""
+        return next((one for one in self.elsewhere if (one.case, one.result) == (case, result)), None)

@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 from dataclasses import replace
+from statistics import NormalDist
 
 import numpy as np
 
@@ -75,7 +76,8 @@ def with_uncertainty(solved: Solved, collector: Collector) -> Solved:
 
 
 def judged_by_probability(solved: Solved, collector: Collector) -> Solved:
-    """A solved calculation whose criteria with a probability are judged by the samples of the assessed case.
+    """A solved calculation whose criteria with a probability are judged by the samples of the assessed case, and in the
+    others by first order.
 
     Code: result-not-propagated, for a criterion that the samples cannot show.
     """
@@ -93,6 +95,8 @@ def judged_by_probability(solved: Solved, collector: Collector) -> Solved:
                 row = row._replace(required=asked.probability)
                 if case.name == found.case:
                     row = _by_chance(row, asked, chances.get(row.id), collector)
+                else:
+                    row = _by_first_order(row, found.spread(case.name, asked.result))
             criteria.append(row)
         cases.append(replace(case, criteria=tuple(criteria)))
     return replace(solved, cases=tuple(cases))
@@ -111,6 +115,15 @@ def _by_chance(
         )
         return row
     reached = chance.probability
+    return row._replace(met=reached >= row.required, reached=reached, stated_met=row.met)
+
+
+def _by_first_order(row: CriterionResult, spread: Spread | None) -> CriterionResult:
+    """A criterion in a case that is not sampled: its margin is taken as normal with the standard uncertainty of what it
+    judges. Without one it stays as the stated values have it."""
+    if spread is None or not spread.standard > 0.0 or not math.isfinite(row.margin):
+        return row
+    reached = NormalDist().cdf(row.margin / spread.standard)
     return row._replace(met=reached >= row.required, reached=reached, stated_met=row.met)
 
 

@@ -444,6 +444,32 @@ def test_the_example_whose_decision_the_uncertainty_changes() -> None:
     assert "area_margin >= 0: 85." in record_text(found)
 
 
+def test_a_case_that_is_not_sampled_is_judged_by_first_order(tmp_path: Path) -> None:
+    """The probability of a margin above zero by JCGM 100 and a normal law, against the samples of the same case.
+
+    Half a standard uncertainty from its middle a rectangle holds 65 %, a normal law 70 %: the clamp's tolerance, a
+    rectangle, counts for most, so both may lie 0.05 apart.
+    """
+    text = (BOOK / "hc-985.yaml").read_text(encoding="utf-8")
+    case = "\ncases:\n  warm day:\n    T_ci: {value: 26 degC, source: s}\n    T_co: {value: 35 degC, source: s}\n"
+    path = tmp_path / "hc-985.yaml"
+    path.write_text(text + case, encoding="utf-8")
+    found = solve_file(path)
+    (criterion,) = found.cases[1].criteria
+    assert criterion.is_met_as_stated and not criterion.met
+    told = f"by first order it holds with {100 * criterion.reached:.1f} %, and 95.0 % is asked for"
+    assert told in record_text(found)
+    path.write_text(
+        text.replace("uncertainty:\n", "uncertainty:\n  case: warm day\n", 1) + case, encoding="utf-8"
+    )
+    sampled = solve_file(path)
+    (chance,) = sampled.uncertainty.sampling.chances
+    assert criterion.reached == pytest.approx(chance.probability, abs=0.05)
+    (judged,) = sampled.cases[1].criteria
+    assert judged.reached == chance.probability
+    assert not math.isnan(sampled.base.criteria[0].reached)
+
+
 def test_the_cooler_against_the_same_sampling_by_hand() -> None:
     """The sampling of the benchmark written out in numpy, with other random numbers and 200 000 samples of each.
 

@@ -76,7 +76,14 @@ def certainty_words(found: Uncertainty | None, item: CriterionResult) -> str:
                     )
                 return f"{AT_STATED}; holds with {_chance(chance.probability, answered)}{lacking}"
     if not math.isnan(item.required):
-        return f"{AT_STATED}; the probability that is asked for is worked out in {_case(found)} alone"
+        spread = found.spread(item.case, result_of(item))
+        if spread is None or math.isnan(item.reached):
+            return f"{AT_STATED}; the probability that is asked for is worked out in {_case(found)} alone"
+        as_stated = "met" if item.is_met_as_stated else "not met"
+        return (
+            f": by first order it holds with {percent(item.reached)}{_lacking(spread.missing, ', without')}, and"
+            f" {percent(item.required)} is asked for; {as_stated}{AT_STATED}"
+        )
     known = _expanded(found, item)
     if known is None:
         return f"{AT_STATED}; its uncertainty is not worked out"
@@ -101,11 +108,9 @@ def _expanded(found: Uncertainty, item: CriterionResult) -> tuple[float, tuple[s
             for budget in found.budgets
             for name in (budget.result, *budget.also)
         }
-    else:
-        spreads = {
-            one.result: (one.expanded, one.missing) for one in found.elsewhere if one.case == item.case
-        }
-    return spreads.get(result)
+        return spreads.get(result)
+    spread = found.spread(item.case, result)
+    return (spread.expanded, spread.missing) if spread is not None else None
 
 
 def missing_terms(found: Uncertainty) -> tuple[str, ...]:
