@@ -163,7 +163,7 @@ class Spread(NamedTuple):
 class Uncertainty(NamedTuple):
     """The uncertainty of a calculation's results in one case; the empty name is the base case.
 
-    ``elsewhere`` holds what the criteria judge in the other cases.
+    ``elsewhere`` holds what the criteria judge in the other cases, ``without`` those that have none, each with the reason.
     """
 
     case: str
@@ -174,6 +174,7 @@ class Uncertainty(NamedTuple):
     exact_allowances: tuple[str, ...]
     sampling: Sampling | None = None
     elsewhere: tuple[Spread, ...] = ()
+    without: tuple[tuple[str, str], ...] = ()
 
     def spread(self, case: str, result: str) -> Spread | None:
         """First order of a result in a case that is not the assessed one; None where none is worked out."""

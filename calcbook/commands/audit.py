@@ -8,7 +8,7 @@ from pathlib import Path
 
 import click
 
-from calcbook.commands.options import form_option, output_option
+from calcbook.commands.options import NamedPath, form_option, output_option
 
 FINDINGS = 1
 
@@ -18,7 +18,7 @@ FINDINGS = 1
     "paths",
     nargs=-1,
     required=True,
-    type=click.Path(path_type=Path, exists=True),
+    type=NamedPath(exists=True),
     metavar="FILE_OR_FOLDER...",
 )
 @output_option()

@@ -7,14 +7,14 @@ from pathlib import Path
 
 import click
 
-from calcbook.commands.options import output_option
+from calcbook.commands.options import NamedPath, output_option
 from calcbook.faults import Collector, Faults, Place
 
 FAULT, NOT_CONVERGED = 2, 3
 
 
 @click.command("issue", short_help="Freeze a calculation under its revision, with a seal.")
-@click.argument("file", type=click.Path(path_type=Path, dir_okay=False), metavar="FILE")
+@click.argument("file", type=NamedPath(dir_okay=False), metavar="FILE")
 @click.option("--preliminary", is_flag=True, help="Issue with open items; the record says so on top.")
 @click.option("--date", metavar="YYYY-MM-DD", help="Date of the issue; today without it.")
 @output_option()

@@ -9,7 +9,21 @@ from typing import Any
 import click
 
 Decorator = Callable[[Callable[..., Any]], Callable[..., Any]]
-FOLDER = click.Path(path_type=Path, file_okay=False)
+
+
+class NamedPath(click.Path):
+    """A path that has a name: an empty one, as an unset variable leaves it, is not the working folder."""
+
+    def __init__(self, **options: Any):
+        super().__init__(path_type=Path, **options)
+
+    def convert(self, value: Any, param: click.Parameter | None, ctx: click.Context | None) -> Any:
+        if value == "":
+            self.fail("the name is empty; `.` is the working folder", param, ctx)
+        return super().convert(value, param, ctx)
+
+
+FOLDER = NamedPath(file_okay=False)
 
 
 def output_option(what: str = "records") -> Decorator:
@@ -39,5 +53,5 @@ def form_option(*forms: str, words: str = "Form on standard output.") -> Decorat
 
 def cards_option(what_becomes: str) -> Decorator:
     """``--cards DIR``: the cards of a book beside those of the library."""
-    folder = click.Path(path_type=Path, exists=True, file_okay=False)
+    folder = NamedPath(exists=True, file_okay=False)
     return click.option("--cards", type=folder, metavar="DIR", help=f"A book's own cards, {what_becomes}.")

@@ -8,15 +8,13 @@ from pathlib import Path
 
 import click
 
-from calcbook.commands.options import form_option, output_option
+from calcbook.commands.options import NamedPath, form_option, output_option
 
 FAULT = 2
 
 
 @click.command("recall", short_help="List what rests on a source or a card, and what another value would do.")
-@click.argument(
-    "paths", nargs=-1, required=True, type=click.Path(path_type=Path), metavar="FILE_OR_FOLDER..."
-)
+@click.argument("paths", nargs=-1, required=True, type=NamedPath(), metavar="FILE_OR_FOLDER...")
 @click.option(
     "--source", metavar="TEXT", help="Text of a source, or a part of it; case and blanks do not count."
 )

@@ -9,11 +9,11 @@ from pathlib import Path
 
 import click
 
-from calcbook.commands.options import form_option, output_option
+from calcbook.commands.options import NamedPath, form_option, output_option
 
 
 @click.command("register", short_help="List every calculation of a book with its status.")
-@click.argument("folder", type=click.Path(path_type=Path, exists=True, file_okay=False))
+@click.argument("folder", type=NamedPath(exists=True, file_okay=False))
 @output_option()
 @form_option("markdown", "json", words="markdown also writes register.md to the folder of the records.")
 def command(folder: Path, output: Path | None, form: str) -> None:

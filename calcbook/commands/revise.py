@@ -7,14 +7,14 @@ from pathlib import Path
 
 import click
 
-from calcbook.commands.options import output_option
+from calcbook.commands.options import NamedPath, output_option
 from calcbook.faults import Collector, Faults, Place
 
 FAULT = 2
 
 
 @click.command("revise", short_help="Begin the next revision in a calculation file.")
-@click.argument("file", type=click.Path(path_type=Path, dir_okay=False), metavar="FILE")
+@click.argument("file", type=NamedPath(dir_okay=False), metavar="FILE")
 @click.option("--numbers", is_flag=True, help="Begin the numbers of a book with letters then numbers.")
 @click.option("--date", metavar="YYYY-MM-DD", help="Date of the revision; today without it.")
 @output_option()

@@ -12,7 +12,7 @@ import click
 from calcbook.book import Found, Outcome, find_calculations, run_all
 from calcbook.book.mistakes import MISTAKE_ACTION
 from calcbook.commands import INTERRUPTED
-from calcbook.commands.options import output_option
+from calcbook.commands.options import NamedPath, output_option
 from calcbook.faults import Collector, Faults
 
 COLUMNS = ("number", "revision", "U clean", "U service", "open items")
@@ -21,9 +21,7 @@ FAULT, NOT_CONVERGED, MISTAKE = 2, 3, 4
 
 
 @click.command("run", short_help="Calculate files or folders and write their records.")
-@click.argument(
-    "paths", nargs=-1, required=True, type=click.Path(path_type=Path), metavar="FILE_OR_FOLDER..."
-)
+@click.argument("paths", nargs=-1, required=True, type=NamedPath(), metavar="FILE_OR_FOLDER...")
 @output_option()
 @click.option(
     "--jobs",

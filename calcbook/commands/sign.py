@@ -7,14 +7,14 @@ from pathlib import Path
 
 import click
 
-from calcbook.commands.options import output_option
+from calcbook.commands.options import NamedPath, output_option
 from calcbook.faults import Collector, Faults, Place
 
 FAULT, NOT_CONVERGED = 2, 3
 
 
 @click.command("sign", short_help="Sign a calculation as prepared, checked or approved.")
-@click.argument("file", type=click.Path(path_type=Path, dir_okay=False), metavar="FILE")
+@click.argument("file", type=NamedPath(dir_okay=False), metavar="FILE")
 @click.option("--role", metavar="ROLE", help="prepared, checked, approved: a role of book.yaml.")
 @click.option("--person", required=True, metavar="ID", help="Id of a person of book.yaml.")
 @click.option("--date", metavar="YYYY-MM-DD", help="Date of the sign-off; today without it.")

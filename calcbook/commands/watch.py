@@ -7,15 +7,13 @@ from pathlib import Path
 import click
 
 from calcbook.book import Outcome
-from calcbook.commands.options import output_option
+from calcbook.commands.options import NamedPath, output_option
 from calcbook.commands.run import COLUMNS, cells, tell_failure
 from calcbook.faults import Faults
 
 
 @click.command("watch", short_help="Calculate anew whenever a file is saved, until Ctrl-C.")
-@click.argument(
-    "paths", nargs=-1, required=True, type=click.Path(path_type=Path), metavar="FILE_OR_FOLDER..."
-)
+@click.argument("paths", nargs=-1, required=True, type=NamedPath(), metavar="FILE_OR_FOLDER...")
 @output_option()
 def command(paths: tuple[Path, ...], output: Path | None) -> None:
     """Calculate every file (a folder: its *.yaml), then keep running: when a file is saved, its record is

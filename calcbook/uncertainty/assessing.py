@@ -70,9 +70,9 @@ def with_uncertainty(solved: Solved, collector: Collector) -> Solved:
     correlations = _correlations(asked, figures, collector)
     if collector or not results:
         return solved
-    elsewhere = _elsewhere(solved, case, chain, correlations)
+    elsewhere, without = _elsewhere(solved, case, chain, correlations)
     found = _Assessment(case, chain, (*figures, *factors), left_out, results, correlations, asked)
-    return replace(solved, uncertainty=found.uncertainty()._replace(elsewhere=elsewhere))
+    return replace(solved, uncertainty=found.uncertainty()._replace(elsewhere=elsewhere, without=without))
 
 
 def judged_by_probability(solved: Solved, collector: Collector) -> Solved:
@@ -129,10 +129,11 @@ def _by_first_order(row: CriterionResult, spread: Spread | None) -> CriterionRes
 
 def _elsewhere(
     solved: Solved, assessed: CaseOutcome, chain: Chain, correlations: Correlations
-) -> tuple[Spread, ...]:
-    """What the criteria judge in the cases that are not the assessed one."""
+) -> tuple[tuple[Spread, ...], tuple[tuple[str, str], ...]]:
+    """What the criteria judge in the cases that are not the assessed one, and the cases without any, with the reason."""
     asked = chain.calculation.uncertainty
     found: list[Spread] = []
+    without = []
     for case in (case for case in solved.cases if case is not assessed):
         named = dict.fromkeys(chain.calculation.criterion(row.id).result for row in case.criteria)
         parts = (measured(chain, name) for name in named if name in case.results)
@@ -143,11 +144,13 @@ def _elsewhere(
         figures = stated_figures(chain, beyond, case.name)
         if beyond:
             # A tolerance stated for the base case may be too wide for a figure that this case restates.
+            first = next(iter(beyond))
+            without.append((case.name, f"{first.message} ({first.found})"))
             continue
         factors, left_out = method_figures(chain, case.solutions)
         one = _Assessment(case, chain, (*figures, *factors), left_out, results, correlations, asked)
         found += one.spreads()
-    return tuple(found)
+    return tuple(found), tuple(without)
 
 
 def _results(

@@ -85,6 +85,14 @@ def test_an_empty_folder_and_a_missing_file_are_told(tmp_path: Path) -> None:
     assert "file-not-found" in result.stderr
 
 
+@pytest.mark.parametrize(
+    "command", ["run", "watch", "recall", "audit", "register", "sign", "issue", "revise"]
+)
+def test_an_empty_name_is_not_the_working_folder(command: str) -> None:
+    result = invoke(command, "")
+    assert result.exit_code == 2 and "the name is empty" in result.output
+
+
 def test_an_output_that_cannot_be_written_is_a_fault(tmp_path: Path) -> None:
     path = calculation(tmp_path, "a.yaml", "T-1")
     blocked = tmp_path / "out"

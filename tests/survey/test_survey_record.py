@@ -177,6 +177,15 @@ def test_a_proposal_beyond_the_rows_is_a_caution(tmp_path: Path, rows: list[list
     assert beyond.open_items == ()
 
 
+def test_a_proposal_at_or_below_the_middle_is_a_caution(tmp_path: Path, rows: list[list[str]]) -> None:
+    """Half of what a fit leaves open lies above its median (definition)."""
+    words = "as likely as not the deposit is larger"
+    assert words not in record_text(solved_survey(tmp_path, rows))
+    assert words in record_text(
+        solved_survey(tmp_path, rows, SURVEY.replace("percentile: 90 %", "percentile: 50 %"))
+    )
+
+
 def test_a_survey_without_sources_has_open_items(tmp_path: Path, rows: list[list[str]]) -> None:
     bare = SURVEY.replace(", source: test}", "}").replace("  source: test\n", "")
     items = {item.id for item in solved_survey(tmp_path, rows, bare).open_items}

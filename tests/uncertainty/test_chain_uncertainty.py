@@ -444,6 +444,12 @@ def test_the_example_whose_decision_the_uncertainty_changes() -> None:
     assert "area_margin >= 0: 85." in record_text(found)
 
 
+def test_a_case_without_an_uncertainty_says_why() -> None:
+    """SL-301 in still air: 0 m/s with the 1 m/s of the base case would be a speed below zero."""
+    text = record_text(solve_file(BOOK / "sl-301.yaml"))
+    assert "Case still air has no uncertainty: the tolerance of" in text and "(0 m/s with 1 m/s)" in text
+
+
 def test_a_case_that_is_not_sampled_is_judged_by_first_order(tmp_path: Path) -> None:
     """The probability of a margin above zero by JCGM 100 and a normal law, against the samples of the same case.
 

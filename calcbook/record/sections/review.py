@@ -85,9 +85,14 @@ def _ranges(page: Page) -> str:
     outside = [check for check in checks if check.state == "outside"]
     accepted = [check for check in checks if check.state == "accepted"]
     unknown = [check for check in checks if check.state == "not evaluable"]
+    cautions = [
+        check for check in page.every_check() if check.level == "caution" and check.state == "outside"
+    ]
+    names = ", ".join(dict.fromkeys(check.id for check in cautions))
+    told = f" Cautions outside: {names}." if cautions else " No caution is outside."
     return (
         f"{len(checks)} range limits over every case and condition: {len(outside)} outside, {len(accepted)}"
-        f" accepted, {len(unknown)} not evaluable, the others within."
+        f" accepted, {len(unknown)} not evaluable, the others within.{told}"
     )
 
 

@@ -134,7 +134,14 @@ def _worked(row: WorkedRow) -> list[Block]:
 def survey_cautions(outcome: SurveyOutcome) -> list[str]:
     """What a reader of the proposal must not overlook."""
     beyond = [_reach(outcome)] if outcome.after > outcome.period else []
-    return [*_many_rejected(outcome), *_many_not_fitted(outcome), *_offsets_apart(outcome), *beyond]
+    below = (
+        [
+            f"The proposal is a limit of {percent(outcome.percentile, 0)}: as likely as not the deposit is larger."
+        ]
+        if outcome.percentile <= 0.5
+        else []
+    )
+    return [*_many_rejected(outcome), *_many_not_fitted(outcome), *_offsets_apart(outcome), *beyond, *below]
 
 
 def _many_not_fitted(outcome: SurveyOutcome) -> list[str]:

@@ -35,6 +35,9 @@ def uncertainty(page: Page) -> list[Block]:
         blocks.append(Bullets(cautions))
     if found.elsewhere:
         blocks += _elsewhere(found, page)
+    if found.without:
+        lines = (f"Case {case} has no uncertainty: {why}." for case, why in found.without)
+        blocks.append(Bullets(tuple(lines)))
     for budget in found.budgets:
         blocks += _budget(budget, page)
     return [*blocks, *_sampled(found, page)]
