@@ -21,7 +21,7 @@ from calcbook.record.numbers import PLAIN_DIGITS, apart, report_unit, unit_text,
 from calcbook.revisions.attribution import Attribution, attribute
 from calcbook.revisions.changes import Change, changes_between, entries_of, merged
 from calcbook.revisions.mixtures import woven
-from calcbook.revisions.sides import Side
+from calcbook.revisions.sides import Side, check_key
 
 DEFAULT_RESULTS = ("U_service",)
 HEADLINES = (
@@ -36,7 +36,23 @@ HEADLINES = (
 )
 # Two recomputed figures that differ by less than the digits of a results file are the same figure.
 RECORDED_DIGITS = 1e-9
+# And by less than a comparison prints of them: a difference of two near figures carries more rounding than these.
+PRINTED_DIGITS = 1e-6
 ABSENT = "not there"
+# A limit in one of these states that came or went tells nothing.
+QUIET = (ABSENT, "within", "not counting")
+# Beside the headlines: results that a reviewer follows, by how their names begin.
+FOLLOWED = (
+    "T ",
+    "dp ",
+    "area_",
+    "heat_reached",
+    "largest_allowance ",
+    "time_until_duty_lost",
+    "cleaning_interval",
+    "allowance_",
+    "fitted ",
+)
 
 
 @dataclass(frozen=True, slots=True)
@@ -120,7 +136,8 @@ class Unchanged:
 class Comparison:
     """Two revisions of a calculation, compared.
 
-    ``verdicts`` are criteria that flipped, ``checks`` limits that changed state. ``signoffs`` and ``feeds``
+    ``verdicts`` are criteria that flipped, ``checks`` limits that changed state, ``software_checks`` limits of the old
+    side that were in another state when its results were recorded. ``signoffs`` and ``feeds``
     are sentences from those who know them: sign-offs that are void, calculations that take a result of this
     one.
     """
@@ -138,6 +155,7 @@ class Comparison:
     cases: tuple[ResultEffect, ...]
     attributions: tuple[Attribution, ...]
     software: tuple[SoftwarePart, ...]
+    software_checks: tuple[Verdict, ...]
     unchanged: tuple[Unchanged, ...]
     signoffs: tuple[str, ...] = ()
     feeds: tuple[str, ...] = ()
@@ -164,6 +182,7 @@ class Comparison:
             or any(effect.difference for effect in self.terms)
             or any(effect.difference for effect in self.results)
             or any(part.software for part in self.software)
+            or self.software_checks
         )
 
 
@@ -196,6 +215,7 @@ def compare(
         cases=_cases(before, after),
         attributions=attribute(old, new, changes, tuple(dict.fromkeys(results))),
         software=_software(old, new, ("U_clean", *results)),
+        software_checks=_software_checks(old),
         unchanged=_unchanged(old, new),
         signoffs=tuple(signoffs),
         feeds=tuple(feeds),
@@ -276,11 +296,10 @@ def check_flips(old: Solved, new: Solved) -> tuple[Verdict, ...]:
     within."""
     before, after = _checks_by_name(old), _checks_by_name(new)
     found = []
-    quiet = (ABSENT, "within", "not counting")
     for key in merged(before, after):
         was, now = before.get(key), after.get(key)
         states = [item.state if item is not None else ABSENT for item in (was, now)]
-        if states[0] == states[1] or (ABSENT in states and all(state in quiet for state in states)):
+        if states[0] == states[1] or (ABSENT in states and all(state in QUIET for state in states)):
             continue
         item = now or was
         assert item is not None
@@ -291,7 +310,7 @@ def check_flips(old: Solved, new: Solved) -> tuple[Verdict, ...]:
 
 def _checks_by_name(solved: Solved) -> dict[str, CheckResult]:
     return {
-        f"{check.id} / {check.condition} / {check.case}": check
+        check_key(check.id, check.condition, check.case): check
         for case in solved.cases
         for check in case.checks
     }
@@ -324,7 +343,9 @@ def _terms(old: Solved, new: Solved) -> tuple[TermEffect, ...]:
 
 def _results(old: Solved, new: Solved) -> tuple[ResultEffect, ...]:
     names = merged(old.base.results, new.base.results)
-    wanted = [name for name in HEADLINES if name in names] + [name for name in names if name.startswith("T ")]
+    wanted = [name for name in HEADLINES if name in names] + [
+        name for name in names if name.startswith(FOLLOWED)
+    ]
     return tuple(_result(name, "", old.base.results.get(name), new.base.results.get(name)) for name in wanted)
 
 
@@ -362,12 +383,31 @@ def _cases(old: Solved, new: Solved) -> tuple[ResultEffect, ...]:
 
 
 def _software(old: Side, new: Side, results: Iterable[str]) -> tuple[SoftwarePart, ...]:
-    recorded = old.recorded
+    """The asked results that were recorded, and every other that the software moved."""
+    recorded, asked = old.recorded, tuple(dict.fromkeys(results))
+    before, after = old.solved.base.results, new.solved.base.results
     found = []
-    for name in dict.fromkeys(results):
-        was, now = old.solved.base.results[name], new.solved.base.results[name]
+    for name in (*asked, *(name for name in recorded if name in before and name not in asked)):
         if name in recorded:
-            found.append(SoftwarePart(name, now.kind, recorded[name], was.value, now.value))
+            now = after[name].value if name in after else math.nan
+            part = SoftwarePart(name, before[name].kind, recorded[name], before[name].value, now)
+            if name in asked or abs(part.software) > PRINTED_DIGITS * abs(part.recorded):
+                found.append(part)
+    return tuple(found)
+
+
+def _software_checks(old: Side) -> tuple[Verdict, ...]:
+    """Limits of the old side whose recorded state is not that of now; one that came since counts where it does not hold."""
+    recorded = old.recorded_checks
+    if not recorded:
+        return ()
+    found = []
+    for key, check in _checks_by_name(old.solved).items():
+        was = recorded.get(key, ABSENT)
+        if was == check.state or (was == ABSENT and check.state in QUIET):
+            continue
+        figure = f"{check.figure}, limit {check.limit}"
+        found.append(Verdict(check.id, check.case, check.condition, was, check.state, "", figure))
     return tuple(found)
 
 

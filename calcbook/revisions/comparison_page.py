@@ -408,9 +408,21 @@ def _software(comparison: Comparison) -> list[Block]:
         Table(columns, tuple(_software_row(part, report) for part in comparison.software)),
         Paragraph(
             f"Recorded with {_software_of(comparison.old)}; recomputed with {software_line()}."
-            " A difference within the 10 digits of the results file counts as none."
+            " A difference within the 10 digits of the results file counts as none. Other results that the software"
+            " moved stand here too."
         ),
+        *_software_checks(comparison),
     ]
+
+
+def _software_checks(comparison: Comparison) -> list[Block]:
+    if not comparison.software_checks:
+        return [Paragraph("Every limit of the old revision is in the state that was recorded.")]
+    rows = tuple(
+        (item.what, case_name(item.case), item.condition, item.was, item.now, item.figure_now)
+        for item in comparison.software_checks
+    )
+    return [Table(("Check of the old revision", "Case", "Condition", "Recorded", "Now", "Figure now"), rows)]
 
 
 def _software_row(part: SoftwarePart, report: Report) -> tuple[str, ...]:
@@ -473,6 +485,10 @@ def _counts(comparison: Comparison) -> Iterable[str]:
     moved = [part for part in comparison.software if part.software]
     if moved:
         yield f"the software moved {', '.join(part.name for part in moved)}; see its part in the comparison"
+    if comparison.software_checks:
+        count = len(comparison.software_checks)
+        words = f"{counted(count, 'limit', 'limits')} of the old revision {'is' if count == 1 else 'are'}"
+        yield f"with this software {words} in another state than recorded"
 
 
 # --- figures ----------------------------------------------------------------------------------------
@@ -590,6 +606,7 @@ def comparison_data(comparison: Comparison) -> dict[str, object]:
             }
             for item in comparison.software
         ],
+        "software_checks": [_verdict_data(item) for item in comparison.software_checks],
         "checks": [_verdict_data(item) for item in comparison.checks],
         "open_items": {
             "opened": [{"id": item.id, "kind": item.kind, "text": item.text} for item in comparison.opened],

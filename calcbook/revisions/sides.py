@@ -95,6 +95,28 @@ class Side:
             if isinstance(item, Mapping) and isinstance(item.get("value"), int | float)
         }
 
+    @property
+    def recorded_checks(self) -> dict[str, str]:
+        """The states of the limits as they were recorded, by id, condition and case."""
+        recorded = self.results or {}
+        groups = [("", recorded.get("checks"))]
+        cases = recorded.get("cases")
+        if isinstance(cases, Mapping):
+            groups += [
+                (name, case.get("checks")) for name, case in cases.items() if isinstance(case, Mapping)
+            ]
+        return {
+            check_key(str(item.get("id")), str(item.get("condition")), name): str(item.get("state"))
+            for name, items in groups
+            for item in (items if isinstance(items, list) else ())
+            if isinstance(item, Mapping)
+        }
+
+
+def check_key(check: str, condition: str, case: str) -> str:
+    """What tells one limit from another over conditions and cases."""
+    return f"{check} / {condition} / {case}"
+
 
 # Issued copies that were solved, by folder, name and seal: their seals are looked at anew each time. `watch` compares
 # every save of a revision with the one before it.

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import subprocess
+from dataclasses import replace
 from pathlib import Path
 
 import pytest
@@ -14,13 +15,15 @@ from calcbook.commands import main
 from calcbook.faults import Faults
 from calcbook.interface import solve_file
 from calcbook.record import digest_of, markdown, results_text, software_of
-from calcbook.revisions.comparison import compare
+from calcbook.revisions.comparison import compare, comparison_blocks
+from calcbook.revisions.comparison_page import short_blocks
 from calcbook.revisions.git import commit_of
 from calcbook.revisions.pairs import compare_texts
 from calcbook.revisions.sides import load_side
 from calcbook.revisions.since import compare_since, since_blocks, since_data
 
 NUMBER = "CV-1"
+ROOT = Path(__file__).resolve().parents[2]
 
 
 def git(folder: Path, *arguments: str) -> str:
@@ -253,6 +256,25 @@ def test_the_part_of_the_software_stands_apart_from_that_of_the_inputs(tmp_path:
     # What was recorded to 10 digits and is recomputed to the same is no part of the software.
     assert parts["U_clean"].software == 0.0
     assert comparison.old.software["calcbook"] == "0.0.9"
+
+
+def test_what_the_software_moved_beside_what_is_asked_stands_there_too() -> None:
+    """Another result and the state of a limit, as an older software would have recorded them."""
+    side = load_side("calcs/wc-101.yaml", ROOT, ROOT / "output")
+    assert side.results is not None and compare(side, side).software_checks == ()
+    results = json.loads(json.dumps(side.results))
+    check = results["checks"][0]
+    assert check["state"] == "within"
+    check["state"] = "outside"
+    results["results"]["UA_service"]["value"] *= 1.1
+    comparison = compare(replace(side, results=results), side)
+    assert [part.name for part in comparison.software if part.software] == ["UA_service"]
+    (moved,) = comparison.software_checks
+    assert (moved.what, moved.was, moved.now) == (check["id"], "outside", "within")
+    page = markdown(comparison_blocks(comparison))
+    told = "with this software 1 limit of the old revision is in another state than recorded"
+    assert told in markdown(short_blocks(comparison))
+    assert f"| {check['id']} |" in page.partition("## The software's part")[2]
 
 
 def test_results_of_other_content_are_not_taken_for_those_of_this_file(tmp_path: Path) -> None:
