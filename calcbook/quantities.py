@@ -25,7 +25,7 @@ from fractions import Fraction
 from pathlib import Path
 from typing import TYPE_CHECKING, Any, Literal, NamedTuple
 
-from calcbook.faults import shown
+from calcbook.faults import Fault, Place, shown
 
 if TYPE_CHECKING:
     import pint
@@ -195,6 +195,15 @@ class QuantityFault(Exception):
             expected=self.expected,
             nearest=self.nearest,
         )
+
+    def at(self, place: Place, use: str = "") -> Fault:
+        """The fault of a file, at a place there; ``use`` tells what the quantity is read for."""
+        message = f"{self.message} ({use})" if use else self.message
+        return Fault(self.code, place, message, self.found, self.expected, self.nearest)
+
+    def within(self, place: Place, use: str = "") -> Fault:
+        """The same at the characters that are wrong, where ``place`` is that of the whole text."""
+        return self.at(place.part(self.column - 1, self.end_column - self.column), use)
 
 
 class QuantityKind(NamedTuple):

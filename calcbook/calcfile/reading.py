@@ -300,14 +300,7 @@ class Reader:
         return quantity
 
     def quantity_fault(self, node: Scalar, error: QuantityFault) -> None:
-        self.collector.add(
-            error.code,
-            node.part(error.column, error.end_column),
-            error.message,
-            found=error.found,
-            expected=error.expected,
-            nearest=error.nearest,
-        )
+        self.collector.take([error.at(node.part(error.column, error.end_column))])
 
     def relation(self, node: Scalar | None) -> Relation | None:
         if node is None:

@@ -119,14 +119,7 @@ def _value(node: Node | None, collector: Collector) -> Value | None:
         place = scalar.part(1, len(scalar.text) + 1)
         return Value(scalar.text, place, quantity=read_any(scalar.text), source=source, has_source=has_source)
     except QuantityFault as error:
-        collector.add(
-            error.code,
-            scalar.part(error.column, error.end_column),
-            error.message,
-            found=error.found,
-            expected=error.expected,
-            nearest=error.nearest,
-        )
+        collector.take([error.at(scalar.part(error.column, error.end_column))])
         return None
 
 

@@ -85,11 +85,4 @@ def _take(column: list[Value], text: str, where: Place, collector: Collector) ->
     try:
         column.append(Value(text, where, quantity=read_any(text)))
     except QuantityFault as error:
-        collector.add(
-            error.code,
-            where,
-            error.message,
-            found=error.found,
-            expected=error.expected,
-            nearest=error.nearest,
-        )
+        collector.take([error.at(where)])

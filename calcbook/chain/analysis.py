@@ -917,14 +917,7 @@ class _Analysis:
         try:
             return as_kind(quantity, kind).value
         except QuantityFault as error:
-            self.collector.add(
-                error.code,
-                place,
-                error.message,
-                found=error.found,
-                expected=error.expected,
-                nearest=error.nearest,
-            )
+            self.collector.take([error.at(place)])
             return None
 
     def _with_acceptances(self, cases: list[CaseOutcome]) -> list[CaseOutcome]:

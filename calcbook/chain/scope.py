@@ -298,15 +298,7 @@ class Scope:
         try:
             return as_kind(value.quantity, kind).reading or "as written"
         except QuantityFault as error:
-            place = value.place.part(max(error.column - 1, 0), max(error.end_column - error.column, 1))
-            self.collector.add(
-                error.code,
-                place,
-                f"{error.message} ({use})",
-                found=error.found,
-                expected=error.expected,
-                nearest=error.nearest,
-            )
+            self.collector.take([error.within(value.place, use)])
             return None
 
     def _say_reading(self, reading: str, value: Value, where: str) -> None:

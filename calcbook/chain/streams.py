@@ -273,15 +273,7 @@ def _figures(scope: Scope, values: tuple[Value, ...], kind_name: str) -> list[fl
         try:
             figures.append(as_kind(value.quantity, kind).value)
         except QuantityFault as error:
-            place = value.place.part(error.column - 1, error.end_column - error.column)
-            scope.collector.add(
-                error.code,
-                place,
-                error.message,
-                found=error.found,
-                expected=error.expected,
-                nearest=error.nearest,
-            )
+            scope.collector.take([error.within(value.place)])
     return figures
 
 

@@ -250,14 +250,7 @@ def _ends(
         try:
             ends.append(read_quantity(fields.text(key), kind).value)
         except QuantityFault as error:
-            collector.add(
-                error.code,
-                fields.place_of(key),
-                error.message,
-                found=error.found,
-                expected=error.expected,
-                nearest=error.nearest,
-            )
+            collector.take([error.at(fields.place_of(key))])
             ends.append(float("nan"))
     if ends[0] > ends[1]:
         collector.add(

@@ -335,14 +335,7 @@ class _Reader:
                 quantity = read_any(value.text)
                 result[key.text] = (quantity.value, " ".join(value.text.split()), quantity.dimension)
             except QuantityFault as error:
-                self.fault(
-                    value.place,
-                    error.code,
-                    error.message,
-                    found=error.found,
-                    expected=error.expected,
-                    nearest=error.nearest,
-                )
+                self.collector.take([error.at(value.place)])
         return result
 
     def _uses(self) -> tuple[Use, ...]:
@@ -680,14 +673,7 @@ class _Reader:
             try:
                 values.append(read_quantity(item.text, vocabulary()[quantity]).value)
             except QuantityFault as error:
-                self.fault(
-                    item.place,
-                    error.code,
-                    error.message,
-                    found=error.found,
-                    expected=error.expected,
-                    nearest=error.nearest,
-                )
+                self.collector.take([error.at(item.place)])
         return np.array(values, dtype=float)
 
     def _digest_text(self, names: tuple[str, ...]) -> str:

@@ -525,9 +525,7 @@ def _is_readable(text: str, result: Result, place: Place, collector: Collector) 
     try:
         read_quantity(text, result.kind)
     except QuantityFault as error:
-        collector.take(
-            [Fault(error.code, place, error.message, error.found, error.expected, tuple(error.nearest))]
-        )
+        collector.take([error.at(place)])
         return False
     return True
 

@@ -195,9 +195,7 @@ def _replacement(wanted: Wanted) -> Quantity | tuple[str, str] | None:
     try:
         return read_any(wanted.value)
     except QuantityFault as error:
-        raise Faults(
-            [Fault(error.code, Place("--value"), error.message, error.found, error.expected, error.nearest)]
-        ) from None
+        raise Faults([error.at(Place("--value"))]) from None
 
 
 # --- what rests on it -------------------------------------------------------------------------------

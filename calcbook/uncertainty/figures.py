@@ -85,15 +85,7 @@ def _stated(
     try:
         read = read_tolerance(tolerance.text, item.kind)
     except QuantityFault as error:
-        place = tolerance.place.part(max(error.column - 1, 0), max(error.end_column - error.column, 1))
-        collector.add(
-            error.code,
-            place,
-            f"{error.message} (tolerance of {given.symbol})",
-            found=error.found,
-            expected=error.expected,
-            nearest=error.nearest,
-        )
+        collector.take([error.within(tolerance.place, f"tolerance of {given.symbol}")])
         return None
     width = read.half_width * abs(item.value) if read.relative else read.half_width
     if width == 0.0:

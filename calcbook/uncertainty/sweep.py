@@ -43,14 +43,7 @@ def _figure(item: Input, quantity: Quantity, place: Place, collector: Collector)
     try:
         return as_kind(quantity, item.kind).value
     except QuantityFault as error:
-        collector.add(
-            error.code,
-            place.part(max(error.column - 1, 0), max(error.end_column - error.column, 1)),
-            f"{error.message} (sweep of {item.symbol})",
-            found=error.found,
-            expected=error.expected,
-            nearest=error.nearest,
-        )
+        collector.take([error.within(place, f"sweep of {item.symbol}")])
         return None
 
 
