@@ -3,14 +3,14 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import NamedTuple
 
 from calcbook.calcfile.links import Link
 from calcbook.calcfile.survey import Survey
 from calcbook.calcfile.uncertainty import UncertaintyText
-from calcbook.faults import Collector, Place
+from calcbook.faults import Collector, Fault, Place, nearest_names, shown
 from calcbook.formulas import Relation
 from calcbook.quantities import Quantity
 
@@ -432,6 +432,11 @@ class Calculation:
     place: Place
 
     @property
+    def symbols(self) -> tuple[str, ...]:
+        """The symbols of the givens and of the derived quantities."""
+        return (*self.givens, *self.derived)
+
+    @property
     def every_term(self) -> tuple[Term, ...]:
         """The terms of the resistance list, each followed by those that stand side by side in it."""
         return tuple(one for term in self.resistances for one in (term, *term.branches))
@@ -464,3 +469,15 @@ class Calculation:
     cleaning: Cleaning | None = None
     survey: Survey | None = None
     sweep: SweepText | None = None
+
+
+def unknown_symbol(symbol: str, place: Place, known: Sequence[str], instead: str = "") -> Fault:
+    """The fault of a symbol that the file does not have; ``instead`` is what can stand there where it has none."""
+    return Fault(
+        "symbol-unknown",
+        place,
+        f"`{shown(symbol)}` is neither a given nor derived",
+        shown(symbol),
+        ", ".join(known) or instead,
+        nearest_names(symbol, known),
+    )

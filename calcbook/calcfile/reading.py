@@ -32,6 +32,7 @@ from calcbook.calcfile.calculation import (
     Term,
     Tolerance,
     Value,
+    unknown_symbol,
 )
 from calcbook.calcfile.duty import read_duty
 from calcbook.calcfile.empty import is_empty
@@ -601,14 +602,7 @@ class Reader:
 
     def report_symbol(self, symbol: str, place: Place, but: str = "") -> None:
         known = [name for name in self.symbols if name != but]
-        self.collector.add(
-            "symbol-unknown",
-            place,
-            f"`{shown(symbol)}` is neither a given nor derived",
-            found=shown(symbol),
-            expected=", ".join(known) or "a given of that symbol",
-            nearest=nearest_names(symbol, known),
-        )
+        self.collector.take([unknown_symbol(symbol, place, known, "a given of that symbol")])
 
     def without_broken(self, derived: dict[str, Derived]) -> dict[str, Derived]:
         """The derived quantities that have no fault and rest on no symbol that has one."""

@@ -9,7 +9,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from calcbook.calcfile.calculation import Criterion
+from calcbook.calcfile.calculation import Criterion, unknown_symbol
 from calcbook.chain.allowance import LARGEST_ALLOWANCE, largest_allowances
 from calcbook.chain.checks import apply_acceptances, evaluate_check
 from calcbook.chain.circuit import branch_coefficient
@@ -879,15 +879,8 @@ class _Analysis:
                 "",
             )
             if not name:
-                known = [*self.chain.calculation.givens, *self.chain.calculation.derived]
-                self.collector.add(
-                    "symbol-unknown",
-                    value.place,
-                    f"`{shown(value.symbol)}` is neither a given nor derived",
-                    found=value.symbol,
-                    expected=", ".join(known),
-                    nearest=nearest_names(value.symbol, known),
-                )
+                known = self.chain.calculation.symbols
+                self.collector.take([unknown_symbol(value.symbol, value.place, known)])
                 return None
             if self.dimensions.get(name) != kind.dimension:
                 self.collector.add(

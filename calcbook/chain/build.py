@@ -6,7 +6,7 @@ from collections.abc import Mapping
 from dataclasses import replace
 
 from calcbook.calcfile import Calculation
-from calcbook.calcfile.calculation import Derived, Term, Value
+from calcbook.calcfile.calculation import Derived, Term, Value, unknown_symbol
 from calcbook.calcfile.empty import is_empty
 from calcbook.calcfile.links import CURRENT
 from calcbook.calcfile.specified import is_open
@@ -348,15 +348,7 @@ class _Builder:
         for symbol in item.relation.symbols:
             inputs[symbol] = self.scope.in_relation(symbol, "derived", f"derived {item.symbol}")
             if not inputs[symbol]:
-                known = [*self.calculation.givens, *self.calculation.derived]
-                self.collector.add(
-                    "symbol-unknown",
-                    item.place,
-                    f"`{shown(symbol)}` is neither a given nor derived",
-                    found=shown(symbol),
-                    expected=", ".join(known),
-                    nearest=nearest_names(symbol, known),
-                )
+                self.collector.take([unknown_symbol(symbol, item.place, self.calculation.symbols)])
                 return
         if any(name not in self.scope.dimensions for name in inputs.values()):
             return
@@ -1156,15 +1148,7 @@ class _Builder:
         for symbol in relation.symbols:
             name = self.scope.in_relation(symbol, term.name, f"{term.name}, {key}")
             if name not in self.scope.dimensions:
-                known = [*self.calculation.givens, *self.calculation.derived]
-                self.collector.add(
-                    "symbol-unknown",
-                    term.place_of(key),
-                    f"`{shown(symbol)}` is neither a given nor derived",
-                    found=shown(symbol),
-                    expected=", ".join(known),
-                    nearest=nearest_names(symbol, known),
-                )
+                self.collector.take([unknown_symbol(symbol, term.place_of(key), self.calculation.symbols)])
                 return None
             inputs[symbol] = name
         return inputs

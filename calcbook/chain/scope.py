@@ -8,10 +8,10 @@ from contextlib import contextmanager
 from dataclasses import dataclass, field
 
 from calcbook.calcfile import Calculation
-from calcbook.calcfile.calculation import Given, Value
+from calcbook.calcfile.calculation import Given, Value, unknown_symbol
 from calcbook.calcfile.empty import is_empty
 from calcbook.chain.types import ABOVE_SITE, ChainStep, Input, OpenItem, RunnerAssumption
-from calcbook.faults import Collector, Fault, Faults, Place, nearest_names, shown
+from calcbook.faults import Collector, Fault, Faults, Place, shown
 from calcbook.formulas import Relation, RelationFault, dimension, parse_expression
 from calcbook.library import vocabulary
 from calcbook.library.operations import Operation, RelationOperation
@@ -198,15 +198,8 @@ class Scope:
         symbol = value.symbol
         given = self.calculation.givens.get(symbol)
         if given is None and symbol not in self.calculation.derived:
-            known = [*self.calculation.givens, *self.calculation.derived]
-            self.collector.add(
-                "symbol-unknown",
-                value.place,
-                f"`{shown(symbol)}` is neither a given nor derived",
-                found=shown(symbol),
-                expected=", ".join(known) or "a quantity with its unit",
-                nearest=nearest_names(symbol, known),
-            )
+            known = self.calculation.symbols
+            self.collector.take([unknown_symbol(symbol, value.place, known, "a quantity with its unit")])
             return ""
         self.used_in.setdefault(symbol, []).append(f"{owner}, {key}" if key else owner)
         if given is None:
