@@ -13,7 +13,6 @@ from typing import Any
 
 Span = tuple[int, int]
 
-ARITHMETIC = ("+", "-", "*", "/", "**")
 COMPARISONS = ("<", "<=", ">", ">=", "==", "!=")
 
 # Standard gravity: exact, 3rd General Conference on Weights and Measures (1901).

@@ -17,7 +17,6 @@ from calcbook.properties.backend import Code
 from calcbook.properties.faults import PropertyFault
 
 NAMES_FILE = Path(__file__).with_name("names.json")
-BASES = ("mass fraction", "volume fraction")
 
 # Words of the trade that the backend's own list lacks.
 EVERYDAY = {"steam": "Water", "water vapour": "Water", "dry air": "Air"}

@@ -164,13 +164,6 @@ def _state(
     return state
 
 
-def issued_state(copy: Issued, lifecycle: Lifecycle) -> str:
-    """The state of an issued copy; nothing is written into it when it is superseded."""
-    if lifecycle.void is not None:
-        return VOID
-    return ISSUED_STATE if copy == lifecycle.latest_issued else SUPERSEDED
-
-
 # --- sign-offs judged -------------------------------------------------------------------------------
 
 
