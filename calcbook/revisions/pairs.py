@@ -10,7 +10,7 @@ from calcbook.documents import read_file
 from calcbook.faults import Collector, Fault, Faults, Place
 from calcbook.revisions.comparing import Comparison, compare
 from calcbook.revisions.lifecycle import VOID, lifecycle_of
-from calcbook.revisions.sides import OUTPUT, Side, links_of, load_issued, load_side, output_of
+from calcbook.revisions.sides import OUTPUT, Side, book_output, links_of, load_issued, load_side
 from calcbook.revisions.signoffs import printed_name
 from calcbook.seals import issued_copies
 
@@ -94,5 +94,5 @@ def output_folder(texts: Sequence[str], folder: Path, output: Path | None) -> Pa
     for text in reversed(texts):
         path = folder / (text.split(":", 2)[-1] if text.startswith("git:") else text)
         if path.parent.is_dir() and (path.is_file() or text.startswith("git:")):
-            return output_of(path, None)
+            return book_output(path, None)
     return folder / OUTPUT

@@ -199,7 +199,7 @@ def load_issued(number: str, revision: str, output: Path) -> Side:
     return side
 
 
-def output_of(path: Path, output: Path | None) -> Path:
+def book_output(path: Path, output: Path | None) -> Path:
     """Where the records of a file's book go: the folder given, else the book's own, else `output`."""
     if output is not None:
         return output

@@ -16,7 +16,7 @@ from calcbook.record.page import counted
 from calcbook.revisions.comparing import Comparison, compare
 from calcbook.revisions.comparison_page import comparison_blocks, comparison_data
 from calcbook.revisions.git import Commit, commit_of
-from calcbook.revisions.sides import Side, load_from_commit, load_side, output_of
+from calcbook.revisions.sides import Side, book_output, load_from_commit, load_side
 from calcbook.seals import ISSUED
 
 BESIDE = (".signoffs.yaml", ".form.yaml")
@@ -150,7 +150,7 @@ class _Search:
 
     def _new(self, path: str) -> Side | None:
         try:
-            return load_side(path, self.folder, output_of(self.folder / path, self.output))
+            return load_side(path, self.folder, book_output(self.folder / path, self.output))
         except (Faults, NotConverged) as error:
             self._fail(path, str(error), error)
             return None
