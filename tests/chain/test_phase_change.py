@@ -146,6 +146,30 @@ def test_boiling_water_on_polished_copper(tmp_path: Path) -> None:
     assert flux == pytest.approx(7.21e4, rel=2e-2)
 
 
+def test_pool_boiling_is_held_against_another_family_without_a_word_from_the_engineer(tmp_path: Path) -> None:
+    """The general equation of Stephan and Abdelsalam stands for any liquid; with the group of water it lies
+    nearer to Cooper and Mostinski, and cryogenic liquids, whose group is left out, are out of its range.
+    """
+    body = outside_tube("water", "liquid", "101325 Pa", "pool-boiling-tube", "108 degC")
+    rows = {row.method: row for row in analysed(tmp_path, body).cross[""]}
+    assert rows["stephan-abdelsalam-1980"].family == "stephan-abdelsalam"
+    named = ", method: stephan-abdelsalam-1980"
+    general, water = (
+        coefficient(analysed(tmp_path, body.replace("pool-boiling-tube", f"pool-boiling-tube{named}{term}")))
+        for term in ("", ", with: {group: water}")
+    )
+    assert rows["stephan-abdelsalam-1980"].coefficient == pytest.approx(general, rel=1e-9)
+    cooper, mostinski = (
+        coefficient(
+            analysed(tmp_path, body.replace("pool-boiling-tube", f"pool-boiling-tube, method: {name}"))
+        )
+        for name in ("cooper-1984", "mostinski-1963")
+    )
+    assert abs(water - (cooper + mostinski) / 2.0) < abs(general - (cooper + mostinski) / 2.0)
+    cold = outside_tube("nitrogen", "liquid", "101325 Pa", "pool-boiling-tube", "82 K", named)
+    assert checks(analysed(tmp_path, cold))["film / stephan-abdelsalam-1980 / cryogenic liquids"] == "outside"
+
+
 # --- choice -----------------------------------------------------------------------------------------
 
 

@@ -519,6 +519,15 @@ def liu_winterton(p: Point) -> float:
     )  # fmt: skip
 
 
+def stephan_abdelsalam(p: Point) -> float:
+    """ht, with the group X_3 of water put right: ht documents cp*T_sat in it and codes the latent heat."""
+    found = boiling_nucleic.Stephan_Abdelsalam(
+        rhol=p["rho_l"], rhog=p["rho_g"], mul=p["mu_l"], kl=p["lam_l"], Cpl=p["cp_l"], Hvap=p["h_fg"],
+        sigma=p["sig"], Tsat=p["T_sat"], q=p["q"], correlation=p["group"],
+    )  # fmt: skip
+    return found * (p["cp_l"] * p["T_sat"] / p["h_fg"]) ** 1.26 if p["group"] == "water" else found
+
+
 IN_TUBES = {"G": (150.0, 300.0, 600.0), "x": (0.05, 0.3, 0.6, 0.9), "d": (0.008, 0.02)}
 PHASES = [
     Grid("nusselt-1916-vertical", saturated(excess=(-0.5, -3.0, -12.0, -30.0), L=(0.05, 0.3, 1.0, 3.0)),
@@ -543,6 +552,9 @@ PHASES = [
          lambda p: boiling_nucleic.Rohsenow(rhol=p["rho_l"], rhog=p["rho_g"], mul=p["mu_l"], kl=p["lam_l"],
                                             Cpl=p["cp_l"], Hvap=p["h_fg"], sigma=p["sig"], Te=p["excess"], Csf=0.013,
                                             n=1.0), "ht"),
+    Grid("stephan-abdelsalam-1980",
+         saturated(q=decades(2e3, 5e5, 5), group=("general", "water", "hydrocarbon", "refrigerant"), d_o=(0.025,)),
+         stephan_abdelsalam, "ht, the group X_3 of water as it documents it"),
     Grid("mostinski-1963-chf", [{"p_r": one / 4e6, "p_c": 4e6, "p": one} for one in decades(8e4, 3.5e6, 60)],
          lambda p: boiling_nucleic.HEDH_Montinsky(P=p["p"], Pc=p["p_c"]), "ht"),
     Grid("zuber-1959-chf",

@@ -422,6 +422,48 @@ def test_rohsenow_against_ht_and_the_published_examples() -> None:
     assert flux * (0.0130 / 0.0132) ** 3 == pytest.approx(28_674.0, rel=2e-4)  # g = 9.81
 
 
+def stephan_abdelsalam(p: Mapping[str, Any]) -> float:
+    """ht, with the group X_3 of water put right: ht documents cp*T_sat in it and codes the latent heat."""
+    found = boiling_nucleic.Stephan_Abdelsalam(
+        rhol=p["rho_l"],
+        rhog=p["rho_g"],
+        mul=p["mu_l"],
+        kl=p["lam_l"],
+        Cpl=p["cp_l"],
+        Hvap=p["h_fg"],
+        sigma=p["sig"],
+        Tsat=p["T_sat"],
+        q=p["q"],
+        correlation=p["group"],
+    )
+    return found * (p["cp_l"] * p["T_sat"] / p["h_fg"]) ** 1.26 if p["group"] == "water" else found
+
+
+GROUPS = ("general", "water", "hydrocarbon", "refrigerant")
+
+
+@pytest.mark.parametrize("group", GROUPS)
+def test_stephan_abdelsalam_against_ht(group: str) -> None:
+    """Measured: 3e-15 at most."""
+    points = cases(SETS, q=(2e3, 2e4, 2e5), group=(group,), d_o=(0.025,))
+    assert largest("stephan-abdelsalam-1980", points, stephan_abdelsalam) < ROUNDING
+
+
+def test_stephan_abdelsalam_with_its_own_group_stands_with_cooper() -> None:
+    """Within the 30 % that textbooks state for Cooper; measured 16 % at most.
+
+    Water at 1 atm with the group X_3 as ht codes it lies 46 % above: the band tells the two readings apart.
+    """
+    fluids = (("water 1 atm", "water"), ("water 150 degC", "water"), ("R134a 5 degC", "refrigerant"))
+    for (fluid, group), flux in itertools.product(fluids, (2e4, 1e5)):
+        point = SETS[fluid] | dict(q=flux, group=group, R_p=1e-6, d_o=0.025)
+        cooper = result("cooper-1984", **point)
+        assert result("stephan-abdelsalam-1980", **point) == pytest.approx(cooper, rel=0.3)
+        if fluid == "water 1 atm":
+            as_coded = (point["cp_l"] * point["T_sat"] / point["h_fg"]) ** -1.26
+            assert as_coded * stephan_abdelsalam(point) > 1.4 * cooper
+
+
 def test_critical_heat_flux_of_the_published_examples() -> None:
     """Cengel and Ghajar, example 10-2: 1.017 MW/m2. Kreith, example 10.1: 1.10709 MW/m2 with pi/24.
 
@@ -649,8 +691,15 @@ def test_films_fall_with_the_drop_and_rise_with_conductivity(fluid: str, drop: f
 @given(fluid=st.sampled_from(sorted(SETS)), flux=st.floats(1e3, 1e6))
 def test_pool_boiling_rises_with_heat_flux_by_less_than_its_first_power(fluid: str, flux: float) -> None:
     """So that flux over coefficient, the superheat, rises with the flux: the circuit has one answer."""
-    for name in ("cooper-1984", "mostinski-1963"):
-        low, high = (result(name, **SETS[fluid], q=factor * flux, d_o=0.025) for factor in (1.0, 1.2))
+    laws = [
+        ("cooper-1984", ""),
+        ("mostinski-1963", ""),
+        *(("stephan-abdelsalam-1980", one) for one in GROUPS),
+    ]
+    for name, group in laws:
+        low, high = (
+            result(name, **SETS[fluid], q=factor * flux, d_o=0.025, group=group) for factor in (1.0, 1.2)
+        )
         assert low < high < 1.2 * low
 
 
