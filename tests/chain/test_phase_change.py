@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from pathlib import Path
 
+import fluids
 import numpy as np
 import pytest
 from small_calculations import analysed, chain_of, givens
@@ -290,6 +291,41 @@ def test_beyond_the_critical_heat_flux_there_is_an_open_item(tmp_path: Path) -> 
     name = "film / cooper-1984 / critical heat flux"
     assert checks(calm)[name] == "within" and not calm.open_items
     assert checks(hot)[name] == "outside" and f"{name} / service" in items(hot)
+
+
+def test_a_bore_that_bubbles_fill_is_out_of_range(tmp_path: Path) -> None:
+    """The figure judged is the confinement number of fluids: water near 1 bar in 4 mm, 0.63, in 14 mm, 0.18."""
+    wide = inside_tube(
+        "water",
+        "liquid",
+        "1e5 Pa",
+        "boiling-inside-tube",
+        "115 degC",
+        "x: 0.3, position: vertical",
+        "0.05 kg/s",
+    )
+    name = "film / liu-winterton-1991 / confinement"
+    for body, diameter, state in ((wide, 0.014, "within"), (wide.replace("14 mm", "4 mm"), 0.004, "outside")):
+        answer = analysed(tmp_path, body)
+        check = next(
+            item for item in answer.cases[0].checks if (item.id, item.condition) == (name, "service")
+        )
+        numbers = answer.cases[0].solutions["service"]
+        expected = fluids.Confinement(
+            D=diameter,
+            rhol=numbers.number("film/saturated liquid/density"),
+            rhog=numbers.number("film/saturated vapour/density"),
+            sigma=numbers.number("stream inside/surface tension"),
+        )
+        assert check.state == state and check.level == "range"
+        assert check.value == pytest.approx(expected, rel=1e-9)
+        assert (f"{name} / service" in items(answer)) == (state == "outside")
+
+
+def test_every_law_of_flow_boiling_has_the_bound_of_the_bore() -> None:
+    for name in load_situation("boiling-inside-tube").methods:
+        limit = next(item for item in load_method(name).limits if item.id == "confinement")
+        assert (limit.level, limit.standing) == ("range", "from memory")
 
 
 def test_a_subcooled_stream_is_refused(tmp_path: Path) -> None:
