@@ -171,6 +171,36 @@ def test_pool_boiling_is_held_against_another_family_without_a_word_from_the_eng
     assert checks(analysed(tmp_path, cold))["film / stephan-abdelsalam-1980 / cryogenic liquids"] == "outside"
 
 
+def test_a_liquid_outside_the_tables_boils_with_a_stated_figure(tmp_path: Path) -> None:
+    """n-Octane is in neither table. A stated figure takes part in the cross-check too; without a source it is an
+    open item, and a factor without its exponent is no pair.
+    """
+    body = outside_tube("n-octane", "liquid", "2 bara", "pool-boiling-tube", "160 degC", ", with: {FIGURES}")
+    factor = "C_sf: {value: 0.0049, source: test}"
+    exponent = "n: {value: 1.7, source: test}"
+    reference = "h_0: {value: 3000 W/(m^2 K), source: test}"
+    whole = analysed(tmp_path, body.replace("FIGURES", f"{factor}, {exponent}, {reference}"))
+    assert not whole.open_items
+    rows = {row.method: row for row in whole.cross[""]}
+    assert rows["rohsenow-1952-stated"].coefficient > 0.0 and rows["gorenflo-2010-stated"].coefficient > 0.0
+    assert rows["rohsenow-1952"].left_out and rows["gorenflo-2010"].left_out
+    lacking = analysed(tmp_path, body.replace("FIGURES", factor))
+    rows = {row.method: row for row in lacking.cross[""]}
+    assert rows["rohsenow-1952-stated"].left_out == "`film` needs number `n`"
+    assert "h_0" in rows["gorenflo-2010-stated"].left_out
+    named = body.replace("pool-boiling-tube", "pool-boiling-tube, method: rohsenow-1952-stated")
+    unsourced = analysed(tmp_path, named.replace("FIGURES", f"C_sf: 0.0049, {exponent}"))
+    assert items(unsourced) == {"film/with C_sf/source": "The value 0.0049 (film, with C_sf) has no source."}
+
+
+def test_a_pair_outside_the_table_boils_in_a_tube_with_a_stated_factor(tmp_path: Path) -> None:
+    term = "x: 0.3, position: vertical, F_fl: {value: 1.2, source: test}"
+    body = inside_tube("n-octane", "liquid", "2 bara", "boiling-inside-tube", "165 degC", term, "0.8 kg/s")
+    rows = {row.method: row for row in analysed(tmp_path, body).cross[""]}
+    assert rows["kandlikar-1990-stated"].coefficient > 0.0
+    assert rows["kandlikar-1990"].left_out
+
+
 # --- choice -----------------------------------------------------------------------------------------
 
 
@@ -476,6 +506,7 @@ def test_cards_of_phase_change_have_an_outside_check_or_are_on_trial() -> None:
         "gungor-winterton-1986",
         "gungor-winterton-1987",
         "kandlikar-1990",
+        "kandlikar-1990-stated",
     }
 
 
