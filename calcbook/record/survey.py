@@ -15,6 +15,8 @@ def survey_texts(outcome: SurveyOutcome) -> dict[str, list[str]]:
     shown: dict[str, list[str]] = {
         f"survey rule {rule.id}": [f"{rule.count}; {rule.limit}", ""] for rule in outcome.rules
     }
+    for figure in (*outcome.worked.chain, *outcome.worked.steps):
+        shown[f"survey worked row / {figure.symbol}"] = [number(figure.value), unit_text(figure.unit)]
     shown["survey rows"] = [f"{outcome.rows}; {outcome.kept}; {outcome.fitted}", ""]
     for one in outcome.figures:
         text = f"{number(one.value, DIGITS)}; {number(one.lower, DIGITS)}; {number(one.upper, DIGITS)}"
