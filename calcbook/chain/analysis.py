@@ -2,24 +2,26 @@
 
 from __future__ import annotations
 
-import itertools
 import math
-from collections.abc import Callable, Iterable, Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, replace
 
 import numpy as np
 
 from calcbook.calcfile.calculation import Criterion, unknown_symbol
-from calcbook.chain.allowance import LARGEST_ALLOWANCE, largest_allowances
 from calcbook.chain.checks import apply_acceptances, evaluate_check
-from calcbook.chain.circuit import branch_coefficient
 from calcbook.chain.completing import completed
 from calcbook.chain.criteria import criterion_margin, is_met
 from calcbook.chain.cross_check import cross_check
 from calcbook.chain.duty import OWNER as DUTY
-from calcbook.chain.duty import duty_results, is_of_duty
-from calcbook.chain.ends import EndState, closed_ends, end_checks, end_states, end_surfaces
-from calcbook.chain.films import SATURATED_SIDES
+from calcbook.chain.ends import EndState, closed_ends, end_checks, end_states
+from calcbook.chain.figures import (
+    ResultFigures,
+    allowance_figures,
+    interfaces,
+    result_figures,
+    surfaces_at_ends,
+)
 from calcbook.chain.findings import (
     assumptions_of,
     celsius,
@@ -30,59 +32,43 @@ from calcbook.chain.findings import (
     stream_findings,
     wall_checks,
 )
-from calcbook.chain.gaps import PLACE, gaps, unused_steps
-from calcbook.chain.latent import PHASE_CHANGE
 from calcbook.chain.outcome import (
-    BranchRow,
     CaseOutcome,
     CheckResult,
-    ClosureRow,
     CriterionResult,
-    PropertyRow,
     Result,
     SensitivityRow,
     Solved,
-    StepRow,
-    TermChain,
-    TermRow,
 )
 from calcbook.chain.plausible import band_checks
 from calcbook.chain.possible import impossible_steps
 from calcbook.chain.pressure import (
-    drops,
     evaluate_pressure_drops,
-    law_of,
     pressure_drop_checks,
     pressure_items,
-    pressure_notes,
 )
 from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.solve import Solution, chosen, closed, conditions_of, solve_both
 from calcbook.chain.specified import OWNER as SPECIFIED
+from calcbook.chain.term_rows import closure_rows, controlling_term, term_rows
 from calcbook.chain.types import (
     CLEAN,
     CONDITIONS,
     SERVICE,
-    Branch,
-    Candidate,
     Chain,
     ChainCheck,
     ChainStep,
-    Group,
     Layer,
     OpenItem,
-    StreamState,
     branches_of,
 )
+from calcbook.chain.working import Working
 from calcbook.faults import Collector, Place, nearest_names, shown
 from calcbook.formulas import number_text
 from calcbook.library import vocabulary
-from calcbook.library.cards import FILM_RESULTS
-from calcbook.properties import SATURATION_FRACTION
 from calcbook.quantities import Quantity, QuantityFault, QuantityKind, as_kind, unit_display
 
 Array = np.ndarray
-CONTROLLING_SHARE = 0.5
 DUTY_LOST = "time_until_duty_lost"
 MEAN_OF_PLACES = " mean of places"
 # Results that are made of the solved base case, by how they start, with the key that asks for them.
@@ -92,14 +78,6 @@ LATER = {
     "allowance_": "survey",
     "fitted ": "survey",
     **{f"U_{condition}{MEAN_OF_PLACES}": "evaluate at" for condition in CONDITIONS},
-}
-# What the heat flow does to a stream, by the first word of the result: its quantity and what it is.
-IMPLIED = {
-    "dT": ("temperature difference", "temperature change of {} that the heat flow implies"),
-    PHASE_CHANGE: (
-        "ratio",
-        "part of the flow of {} that its heat balance changes from one phase to the other",
-    ),
 }
 PLACES_SPREAD = 0.2
 # Slopes below this part of U are the rounding of sums that cancel.
@@ -264,17 +242,18 @@ class _Analysis:
             self._stop_if_impossible(name, solutions.values())
         # A number that a limit stops is not there to be judged.
         criteria = () if self.collector else self.criteria(name, results, solutions)
-        terms = {condition: self._terms(solution) for condition, solution in solutions.items()}
-        controlling, share = _controlling(terms[SERVICE])
-        return CaseOutcome(
+        terms = {condition: term_rows(self.chain, solution) for condition, solution in solutions.items()}
+        controlling, share = controlling_term(terms[SERVICE])
+        working = Working(self.chain, solutions)
+        outcome = CaseOutcome(
             name=name,
             inputs={key: float(value) for key, value in inputs.items()},
             solutions=solutions,
             results=results,
             terms=terms,
-            chains=self._chains(solutions),
-            circuit=self._rows(self.chain.circuit, solutions),
-            properties=self._properties(solutions),
+            chains=working.chains(),
+            circuit=working.circuit(),
+            properties=working.properties(),
             checks=checks,
             criteria=criteria,
             assumptions=assumptions_of(self.chain, solutions),
@@ -285,10 +264,12 @@ class _Analysis:
                 *pressure_items(self.chain, name, solutions),
                 *root_items(self.chain, name, inputs, solutions),
             ),
-            closure=self._closure(solutions),
+            closure=closure_rows(self.chain, solutions),
             controlling=controlling,
             controlling_share=share,
         )
+        self.used_cards |= working.used_cards
+        return outcome
 
     def _stop_if_limit(self, name: str, solution: Solution) -> None:
         """A stop limit that explains a missing number is a fault, not a failure to converge."""
@@ -360,385 +341,9 @@ class _Analysis:
     ) -> dict[str, Result]:
         """The named results of a single record, with those that take solutions of their own."""
         allowances = allowance_figures(self.chain, inputs, solutions[SERVICE])
-        return _single(self.figures(solutions) | allowances | surfaces_at_ends(ends))
-
-    def figures(self, solutions: Mapping[str, Solution]) -> dict[str, ResultFigures]:
-        """Every named result at every sample."""
-        kinds = vocabulary()
-        results: dict[str, ResultFigures] = {}
-
-        def put(name: str, values: Array, kind: str, title: str) -> None:
-            results[name] = ResultFigures(values, kinds[kind], title)
-
-        table = self.chain.results
-        for condition, solution in reversed(list(solutions.items())):
-            put(
-                f"U_{condition}",
-                solution.figure(table["U"]),
-                "overall coefficient",
-                f"overall coefficient, {condition}",
-            )
-            for surface in self.chain.surfaces:
-                put(
-                    f"U_{condition} on {surface.name}",
-                    solution.figure(table[f"U on {surface.name}"]),
-                    "overall coefficient",
-                    f"overall coefficient on {surface.name}, {condition}",
-                )
-            if "U on bare" in table:
-                put(
-                    f"U_{condition} on bare",
-                    solution.figure(table["U on bare"]),
-                    "overall coefficient",
-                    f"overall coefficient on bare, {condition}",
-                )
-            put(f"UA_{condition}", solution.figure(table["UA"]), "conductance", f"conductance, {condition}")
-            if "heat flux" in table:
-                put(
-                    f"heat_flux_{condition}",
-                    solution.figure(table["heat flux"]),
-                    "heat flux",
-                    f"heat flux, {condition}",
-                )
-                put(
-                    f"heat_flow_{condition}",
-                    solution.figure(table["heat flow"]),
-                    "heat flow",
-                    f"heat flow, {condition}",
-                )
-        for name in table:
-            kind, _, stream = name.partition(" ")
-            if kind not in IMPLIED:
-                continue
-            quantity, title = IMPLIED[kind]
-            for condition, solution in reversed(list(solutions.items())):
-                figures = solution.figure(table[name])
-                put(f"{name} {condition}", figures, quantity, f"{title.format(stream)}, {condition}")
-        clean, service = (results[f"U_{condition}"].values for condition in CONDITIONS)
-        put("cleanliness", service / clean, "ratio", "cleanliness, U_service/U_clean")
-        put("excess_surface", clean / service - 1.0, "ratio", "excess surface, U_clean/U_service − 1")
-        for condition, solution in reversed(list(solutions.items())):
-            for name, value in self._interfaces(solution):
-                at_mean = ", at the mean temperatures" if self.chain.calculation.duty is not None else ""
-                put(
-                    f"T {name} {condition}", value, "temperature", f"temperature {name}, {condition}{at_mean}"
-                )
-            for element in self.chain.elements:
-                if isinstance(element, Group):
-                    put(
-                        f"h {element.name} {condition}",
-                        solution.figure(table[f"h {element.name}"]),
-                        "film coefficient",
-                        f"film coefficient {element.name}, {condition}",
-                    )
-                put(
-                    f"R {element.name} {condition}",
-                    solution.figure(table[f"R {element.name}"]),
-                    "area resistance",
-                    f"resistance of {element.name} on the basis area, {condition}",
-                )
-        duty_results(self.chain, solutions, put)
-        self._stream_results(solutions[SERVICE], put)
-        for _, branch, drop in drops(self.chain):
-            for condition, solution in reversed(list(solutions.items())):
-                put(
-                    f"dp {branch.stream}_{condition}",
-                    solution.figure(drop.total.coefficient),
-                    "pressure drop",
-                    f"pressure drop of {branch.stream}, {condition}",
-                )
-        return results
-
-    def _stream_results(self, solution: Solution, put: Callable[[str, Array, str, str], None]) -> None:
-        for group in (self.chain.inner, self.chain.outer):
-            for branch in group.branches:
-                state = self.chain.streams.get(branch.stream)
-                if state is None:
-                    continue
-                speed = state.flow if state.flow_kind == "speed" else f"{branch.name}/speed"
-                for step, name, kind in (
-                    (speed, "speed", "speed"),
-                    (f"{branch.name}/Re", "Re", "Reynolds number"),
-                ):
-                    if step in solution.values:
-                        put(
-                            f"{name} {branch.stream}",
-                            solution.figure(step),
-                            kind,
-                            f"{kind} of {branch.stream}",
-                        )
-
-    def _interfaces(self, solution: Solution) -> list[tuple[str, Array]]:
-        """Temperatures between terms, from the inside to the outside, and of both wetted surfaces."""
-        if not self.chain.has_temperatures:
-            return []
-        temperatures = self._temperatures(solution)
-        found = [("inside surface", temperatures[1]), ("outside surface", temperatures[-2])]
-        for index, (before, after) in enumerate(
-            zip(self.chain.elements, self.chain.elements[1:], strict=False), 1
-        ):
-            found.append((f"{before.name} to {after.name}", temperatures[index]))
-        return found
-
-    def _temperatures(self, solution: Solution) -> list[Array]:
-        """Temperature before the first element, between elements, and after the last one."""
-        if not self.chain.has_temperatures:
-            return [np.asarray(math.nan)] * (len(self.chain.elements) + 1)
-        flow = solution.figure("solution/Q")
-        temperatures = [solution.figure(self.chain.inner.bulk)]
-        for element in self.chain.elements[:-1]:
-            if isinstance(element, Group):
-                temperatures.append(solution.figure(element.surface_temperature))
-            elif element.second_temperature:
-                temperatures.append(solution.figure(element.second_temperature))
-            else:
-                area = solution.figure(self.chain.surfaces[element.surface].area)
-                temperatures.append(temperatures[-1] - flow * solution.figure(element.resistance) / area)
-        temperatures[-1] = solution.figure(self.chain.outer.surface_temperature)
-        return [*temperatures, solution.figure(self.chain.outer.bulk)]
-
-    def _terms(self, solution: Solution) -> tuple[TermRow, ...]:
-        temperatures = [float(item) for item in self._temperatures(solution)]
-        total = solution.number(self.chain.results["R total"])
-        rows = []
-        for index, element in enumerate(self.chain.elements):
-            resistance = solution.number(self.chain.results[f"R {element.name}"])
-            coefficient, methods = math.nan, ""
-            branches: tuple[BranchRow, ...] = ()
-            if isinstance(element, Group):
-                coefficient = solution.number(self.chain.results[f"h {element.name}"])
-                own = 1.0 / coefficient
-                methods = ", ".join(chosen(branch, solution).method.id for branch in element.branches)
-                branches = self._branches(element, solution) if len(element.branches) > 1 else ()
-            else:
-                own = solution.number(element.resistance)
-                methods = element.material
-                if element.gap is not None:
-                    coefficient = 1.0 / own
-                    methods = ", ".join(chosen(way, solution).method.id for way in element.gap.ways)
-                    branches = self._ways(element, solution) if len(element.gap.ways) > 1 else ()
-            rows.append(
-                TermRow(
-                    element.name,
-                    _kind(element),
-                    self.chain.surfaces[element.surface].name,
-                    own,
-                    resistance,
-                    resistance / total,
-                    coefficient,
-                    temperatures[index],
-                    temperatures[index + 1],
-                    methods,
-                    branches,
-                )
-            )
-        return tuple(rows)
-
-    def _branches(self, group: Group, solution: Solution) -> tuple[BranchRow, ...]:
-        area = solution.number(self.chain.surfaces[group.surface].area)
-        surface = solution.number(group.surface_temperature) if self.chain.has_temperatures else math.nan
-        outward = -1.0 if group.side == "inside" else 1.0
-        rows = []
-        for branch in group.branches:
-            coefficient = solution.number(branch_coefficient(group, branch.name))
-            reference = solution.number(branch.reference) if branch.reference else math.nan
-            flow = coefficient * area * outward * (surface - reference)
-            rows.append(BranchRow(branch.name, branch.kind, coefficient, reference, flow))
-        return tuple(rows)
-
-    def _ways(self, layer: Layer, solution: Solution) -> tuple[BranchRow, ...]:
-        """The ways for heat across a gap, each with its share of the heat flow."""
-        assert layer.gap is not None
-        area = solution.number(self.chain.surfaces[layer.surface].area)
-        known = self.chain.has_temperatures
-        first, second = (
-            solution.number(name) if known else math.nan
-            for name in (layer.first_temperature, layer.second_temperature)
-        )
-        rows = []
-        for way, name in zip(layer.gap.ways, layer.gap.coefficients, strict=True):
-            coefficient = solution.number(name)
-            rows.append(
-                BranchRow(way.name, way.kind, coefficient, second, coefficient * area * (first - second))
-            )
-        return tuple(rows)
+        return _single(result_figures(self.chain, solutions) | allowances | surfaces_at_ends(ends))
 
     # -- chain rows ---------------------------------------------------------------------------------
-
-    def _rows(self, steps: tuple[ChainStep, ...], solutions: Mapping[str, Solution]) -> tuple[StepRow, ...]:
-        return tuple(
-            StepRow(step, _value(solutions[CLEAN], step.id), _value(solutions[SERVICE], step.id))
-            for step in steps
-        )
-
-    def _chains(self, solutions: Mapping[str, Solution]) -> tuple[TermChain, ...]:
-        """The rows of every term, each step once, at the term that uses it first."""
-        owners = {name for element in self.chain.elements for name in _names(element)}
-        duty = tuple(step for step in self.chain.steps if is_of_duty(step))
-        shared = tuple(step for step in self.chain.steps if step.owner not in owners and step not in duty)
-        chains = []
-        if shared:
-            chains.append(
-                TermChain(
-                    "shared figures",
-                    "geometry, streams and derived quantities",
-                    self._rows(shared, solutions),
-                    (),
-                )
-            )
-        if duty:
-            chains.append(TermChain(DUTY, "heat balance of both streams", self._rows(duty, solutions), ()))
-        seen = {step.id for step in (*shared, *duty)}
-        for element in self.chain.elements:
-            steps = [step for step in self.chain.steps if step.owner in _names(element)]
-            notes: list[str] = []
-            if isinstance(element, Layer):
-                steps += self._layer_steps(element, solutions)
-                for way in element.gap.ways if element.gap is not None else ():
-                    notes += _branch_notes(way, solutions)
-            else:
-                for branch in element.branches:
-                    steps += self._branch_steps(branch, solutions)
-                    notes += _branch_notes(branch, solutions)
-                steps += self._pressure_steps(element, solutions)
-                notes += pressure_notes(self.chain, element, solutions)
-            fresh = tuple({step.id: step for step in steps if step.id not in seen}.values())
-            seen |= {step.id for step in fresh}
-            chains.append(
-                TermChain(element.name, _title(element), self._rows(fresh, solutions), tuple(notes))
-            )
-        return tuple(chains)
-
-    def _layer_steps(self, layer: Layer, solutions: Mapping[str, Solution]) -> list[ChainStep]:
-        """The steps of a layer; of a gap without those of methods that are not used."""
-        if layer.gap is None:
-            return list(layer.steps)
-        used = [chosen(way, solutions[condition]) for way in layer.gap.ways for condition in CONDITIONS]
-        for candidate in used:
-            self.used_cards |= {f"method {card.id}": card.digest_text for card in candidate.cards}
-        unused = unused_steps(layer.gap, used)
-        return [step for step in layer.steps if step.id not in unused]
-
-    def _branch_steps(self, branch: Branch, solutions: Mapping[str, Solution]) -> list[ChainStep]:
-        steps = list(branch.choice_steps)
-        for condition in CONDITIONS:
-            candidate = chosen(branch, solutions[condition])
-            steps += candidate.steps
-            self.used_cards |= {f"method {card.id}": card.digest_text for card in candidate.cards}
-        return steps
-
-    def _pressure_steps(self, element: Group, solutions: Mapping[str, Solution]) -> list[ChainStep]:
-        """The steps of the pressure drops beside the films of a group, in both conditions."""
-        steps: list[ChainStep] = []
-        for group, _, drop in drops(self.chain):
-            if group is not element:
-                continue
-            steps += drop.choice_steps
-            for part in (*(law_of(drop, solutions[condition]) for condition in CONDITIONS), drop.total):
-                if part is not None:
-                    steps += part.steps
-                    self.used_cards |= {f"method {card.id}": card.digest_text for card in part.cards}
-        return steps
-
-    def _properties(self, solutions: Mapping[str, Solution]) -> tuple[PropertyRow, ...]:
-        """Properties of streams by place, as far as the chain asked for them."""
-        rows = []
-        for state in self.chain.streams.values():
-            bulk = self._property_row(
-                state, "bulk", "", f"stream {state.name}", state.temperature, solutions[SERVICE]
-            )
-            if bulk is not None:
-                rows.append(bulk)
-            rows += self._saturated_rows(state, solutions)
-            for group in (self.chain.inner, self.chain.outer):
-                for branch in group.branches:
-                    if branch.stream != state.name:
-                        continue
-                    for place, temperature in (
-                        ("film", f"{branch.name}/film/T"),
-                        ("surface", group.surface_temperature),
-                    ):
-                        for condition in CONDITIONS:
-                            row = self._property_row(
-                                state,
-                                place,
-                                condition,
-                                f"{branch.name}/{place}",
-                                temperature,
-                                solutions[condition],
-                            )
-                            if row is not None:
-                                rows.append(row)
-        for layer, gap in gaps(self.chain):
-            for condition in CONDITIONS:
-                row = self._property_row(
-                    gap.fluid,
-                    PLACE,
-                    condition,
-                    f"{layer.name}/{PLACE}",
-                    gap.fluid.temperature,
-                    solutions[condition],
-                )
-                if row is not None:
-                    rows.append(row)
-        return tuple(rows)
-
-    def _saturated_rows(self, state: StreamState, solutions: Mapping[str, Solution]) -> list[PropertyRow]:
-        """Properties on the saturation line of a stream that changes phase."""
-        rows = []
-        for group in (self.chain.inner, self.chain.outer):
-            for branch in group.branches:
-                if branch.stream != state.name or not state.saturation:
-                    continue
-                for place, phase in SATURATED_SIDES.items():
-                    moves = place == "liquid film"
-                    at = f"{branch.name}/liquid film/T" if moves else state.saturation
-                    for condition in CONDITIONS if moves else ("",):
-                        row = self._property_row(
-                            state,
-                            place,
-                            condition,
-                            f"{branch.name}/{place}",
-                            at,
-                            solutions[condition or SERVICE],
-                        )
-                        if row is not None:
-                            rows.append(row._replace(phase=phase, pressure=math.nan))
-        return rows
-
-    def _property_row(
-        self,
-        state: StreamState,
-        place: str,
-        condition: str,
-        prefix: str,
-        temperature: str,
-        solution: Solution,
-    ) -> PropertyRow | None:
-        names = (
-            "density",
-            "viscosity",
-            "conductivity",
-            "heat capacity",
-            "expansion coefficient",
-            SATURATION_FRACTION,
-        )
-        used = {
-            name: solution.number(f"{prefix}/{name}")
-            for name in names
-            if f"{prefix}/{name}" in solution.values
-        }
-        if not used or temperature not in solution.values:
-            return None
-        if all(name in used for name in names[1:4]):
-            used["Prandtl number"] = used["viscosity"] * used["heat capacity"] / used["conductivity"]
-        pressure = solution.number(state.pressure) if state.pressure else math.nan
-        at = solution.number(temperature)
-        bulk = solution.number(state.temperature)
-        fraction = solution.number(state.fraction) if state.fraction else None
-        fluid = state.fluid.state(None if math.isnan(pressure) else pressure, fraction, state.phase)
-        phase = state.phase or fluid.phase_at(bulk)
-        return PropertyRow(state.name, place, condition, at, pressure, phase, used, state.fluid_name)
 
     # -- checks and criteria ------------------------------------------------------------------------
 
@@ -927,64 +532,6 @@ class _Analysis:
 
     # -- closure, sensitivity ------------------------------------------------------------------------
 
-    def _closure(self, solutions: Mapping[str, Solution]) -> tuple[ClosureRow, ...]:
-        """Heat flow through each element from its two temperatures, summed drops, U·A on each surface."""
-        if not self.chain.has_temperatures:
-            return self._closure_of_areas(solutions)
-        rows = []
-        for condition in reversed(CONDITIONS):
-            solution = solutions[condition]
-            flow = solution.number(self.chain.results["heat flow"])
-            for term in self._terms(solution):
-                surface = next(surface for surface in self.chain.surfaces if surface.name == term.surface)
-                if term.own_resistance == 0.0:
-                    continue
-                through = (
-                    solution.number(surface.area)
-                    / term.own_resistance
-                    * (term.inner_temperature - term.outer_temperature)
-                )
-                rows.append(
-                    ClosureRow(
-                        f"heat flow through {term.name}",
-                        condition,
-                        through,
-                        flow,
-                        _residual(through, flow),
-                        "W",
-                    )
-                )
-            temperatures = [float(item) for item in self._temperatures(solution)]
-            summed = sum(before - after for before, after in itertools.pairwise(temperatures))
-            whole = temperatures[0] - temperatures[-1]
-            rows.append(
-                ClosureRow(
-                    "summed temperature drops", condition, summed, whole, _residual(summed, whole), "K"
-                )
-            )
-        return (*rows, *self._closure_of_areas(solutions))
-
-    def _closure_of_areas(self, solutions: Mapping[str, Solution]) -> tuple[ClosureRow, ...]:
-        rows = []
-        for condition in reversed(CONDITIONS):
-            solution = solutions[condition]
-            conductance = solution.number(self.chain.results["UA"])
-            for surface in self.chain.surfaces:
-                value = solution.number(self.chain.results[f"U on {surface.name}"]) * solution.number(
-                    surface.area
-                )
-                rows.append(
-                    ClosureRow(
-                        f"U·A on {surface.name}",
-                        condition,
-                        value,
-                        conductance,
-                        _residual(value, conductance),
-                        "W/K",
-                    )
-                )
-        return tuple(rows)
-
     def _sensitivity(self, base: CaseOutcome) -> tuple[SensitivityRow, ...]:
         """1 % of each figure (1 K of a temperature), ranked by what it moves U in service by."""
         name = self.chain.results["U"]
@@ -1007,15 +554,6 @@ class _Analysis:
 
 
 @dataclass(frozen=True, slots=True)
-class ResultFigures:
-    """A named result at every sample, in SI; NaN where there is none."""
-
-    values: Array
-    kind: QuantityKind
-    title: str
-
-
-@dataclass(frozen=True, slots=True)
 class CriterionFigures:
     """An acceptance criterion at every sample: its number from 1, and the margin (NaN where not known)."""
 
@@ -1026,38 +564,6 @@ class CriterionFigures:
     @property
     def met(self) -> Array:
         return is_met(self.criterion, self.margin)
-
-
-def result_figures(chain: Chain, solutions: Mapping[str, Solution]) -> dict[str, ResultFigures]:
-    """The named results of solutions of many samples, with their pressure drops evaluated."""
-    return _Analysis(chain, Collector()).figures(solutions)
-
-
-def surfaces_at_ends(states: tuple[EndState, ...]) -> dict[str, ResultFigures]:
-    """The wetted surfaces at both ends of a unit as named results."""
-    kind = vocabulary()["temperature"]
-    return {name: ResultFigures(values, kind, title) for name, values, title in end_surfaces(states)}
-
-
-def allowance_figures(
-    chain: Chain, inputs: Mapping[str, Array], service: Solution, thorough: bool = True
-) -> dict[str, ResultFigures]:
-    """The largest allowance of every fouling term as named results, found with solutions of their own.
-
-    That of the only term stands under the bare name too.
-    """
-    named = {
-        f"{LARGEST_ALLOWANCE} {name}": ResultFigures(
-            values,
-            vocabulary()["area resistance"],
-            f"largest resistance of {name} with which the installed area carries the duty; below zero the resistance that"
-            " is too much without it",
-        )
-        for name, values in largest_allowances(chain, inputs, service, thorough).items()
-    }
-    if len(named) == 1:
-        named[LARGEST_ALLOWANCE] = next(iter(named.values()))
-    return named
 
 
 def criterion_figures(
@@ -1085,8 +591,7 @@ def clean_surface_criteria(
     """
     kind = vocabulary()["temperature"]
     results = {
-        f"T {name} {CLEAN}": ResultFigures(value, kind, "")
-        for name, value in _Analysis(chain, Collector())._interfaces(solution)
+        f"T {name} {CLEAN}": ResultFigures(value, kind, "") for name, value in interfaces(chain, solution)
     } | surfaces_at_ends(ends)
     found = []
     for item in criterion_figures(chain, {SERVICE: solution}, results):
@@ -1136,86 +641,6 @@ def _single(figures: Mapping[str, ResultFigures]) -> dict[str, Result]:
         for name, item in figures.items()
         if math.isfinite(value := float(item.values))
     }
-
-
-def _names(element: Group | Layer) -> set[str]:
-    """The names under which an element's steps stand."""
-    if isinstance(element, Layer):
-        return {element.name}
-    return {element.name, *(branch.name for branch in element.branches)}
-
-
-def _value(solution: Solution, name: str) -> float | bool:
-    value = solution.values.get(name)
-    if value is None:
-        return math.nan
-    item = np.asarray(value).ravel()[0]
-    return bool(item) if isinstance(item, np.bool_) else float(item)
-
-
-def _kind(element: Group | Layer) -> str:
-    if isinstance(element, Layer):
-        return element.kind
-    return "parallel" if len(element.branches) > 1 else element.branches[0].kind
-
-
-def _title(element: Group | Layer) -> str:
-    if isinstance(element, Layer) and element.gap is not None:
-        return " beside ".join(
-            way.situation.title if way.situation is not None else way.kind for way in element.gap.ways
-        )
-    if isinstance(element, Layer):
-        return element.material or element.kind
-    return " beside ".join(
-        branch.situation.title if branch.situation is not None else branch.kind for branch in element.branches
-    )
-
-
-def _card_words(candidate: Candidate) -> str:
-    return f"{candidate.method.id}, house method" if candidate.method.house else candidate.method.id
-
-
-def _branch_notes(branch: Branch, solutions: Mapping[str, Solution]) -> list[str]:
-    """Which method acts, in one sentence; two where clean and service differ."""
-    clean, service = (chosen(branch, solutions[condition]) for condition in CONDITIONS)
-    if branch.situation is None:
-        return [f"{branch.name}: {service.because}."]
-    if clean is service:
-        return [
-            f"{branch.name}: {service.method.title} ({_card_words(service)}), {service.because}.",
-            *_accuracy_words(branch, service),
-        ]
-    return [
-        f"{branch.name}, service: {service.method.title} ({service.method.id}), {service.because}.",
-        f"{branch.name}, clean: {clean.method.title} ({clean.method.id}), {clean.because}.",
-    ]
-
-
-def _accuracy_words(branch: Branch, candidate: Candidate) -> list[str]:
-    """How good the method is said to be, and by whom."""
-    stated = candidate.method.accuracy
-    if stated is None:
-        used = "; ".join(
-            f"{card.id}, which it uses: within {card.accuracy.within}"
-            for card in candidate.cards
-            if card.accuracy is not None and card.gives in FILM_RESULTS
-        )
-        return [
-            f"{branch.name}: no accuracy of {candidate.method.id} itself is stated{f'; {used}' if used else ''}."
-        ]
-    return [
-        f"{branch.name}: accuracy of {candidate.method.id} within {stated.within}, {stated.coverage}; stated by"
-        f" {stated.stated_by} (standing: {stated.standing})."
-    ]
-
-
-def _controlling(terms: tuple[TermRow, ...]) -> tuple[str, float]:
-    largest = max(terms, key=lambda term: term.share)
-    return (largest.name, largest.share) if largest.share >= CONTROLLING_SHARE else ("", largest.share)
-
-
-def _residual(value: float, against: float) -> float:
-    return abs(value - against) / abs(against) if against else abs(value)
 
 
 def _open_checks(checks: tuple[CheckResult, ...]) -> list[OpenItem]:

@@ -8,9 +8,10 @@ from collections.abc import Mapping
 import numpy as np
 
 from calcbook.chain.duty import DUTY_RESULTS
+from calcbook.chain.figures import interfaces
 from calcbook.chain.pressure import drops, evaluate_pressure_drops
 from calcbook.chain.solve import Solution
-from calcbook.chain.types import CLEAN, CONDITIONS, SERVICE, Chain, Group
+from calcbook.chain.types import CLEAN, CONDITIONS, SERVICE, Chain
 
 Array = np.ndarray
 RATIOS = ("cleanliness", "excess_surface")
@@ -46,62 +47,32 @@ def is_coefficient(name: str) -> bool:
 def result_values(chain: Chain, solutions: Mapping[str, Solution], name: str) -> Array | None:
     """A result for every sample; None where the chain has no such result."""
     if name in RATIOS:
-        clean, service = (_value(solutions[condition], chain.results["U"]) for condition in CONDITIONS)
+        clean, service = (solutions[condition].figure(chain.results["U"]) for condition in CONDITIONS)
         return service / clean if name == "cleanliness" else clean / service - 1.0
     if name in DUTY_RESULTS:
         condition, key = DUTY_RESULTS[name]
-        return _value(solutions[condition], chain.results[key]) if key in chain.results else None
+        return solutions[condition].figure(chain.results[key]) if key in chain.results else None
     found = _WITH_CONDITION.fullmatch(name)
     if found is not None:
         key = _IN_TABLE[found[1]] + (f" on {found[3]}" if found[3] else "")
-        return _value(solutions[found[2]], chain.results[key]) if key in chain.results else None
+        return solutions[found[2]].figure(chain.results[key]) if key in chain.results else None
     found = _OF_TERM.fullmatch(name)
     if found is not None and found[1] == "T":
-        return _interface(chain, solutions[found[3]], found[2])
+        return dict(interfaces(chain, solutions[found[3]])).get(found[2])
     if found is not None:
         key = f"{found[1]} {found[2]}"
-        return _value(solutions[found[3]], chain.results[key]) if key in chain.results else None
+        return solutions[found[3]].figure(chain.results[key]) if key in chain.results else None
     found = _PRESSURE_DROP.fullmatch(name)
     if found is not None:
         return _pressure_drop(chain, solutions[found[2]], found[1])
     return _of_stream(chain, solutions[SERVICE], name)
 
 
-def _value(solution: Solution, step: str) -> Array:
-    return np.asarray(solution.values[step], dtype=float)
-
-
-def _interface(chain: Chain, solution: Solution, name: str) -> Array | None:
-    """Temperature at a place between two terms, or of a wetted surface."""
-    if not chain.has_temperatures:
-        return None
-    if name == "inside surface":
-        return _value(solution, chain.inner.surface_temperature)
-    if name == "outside surface":
-        return _value(solution, chain.outer.surface_temperature)
-    temperature = _value(solution, chain.inner.bulk)
-    for element, following in zip(chain.elements, chain.elements[1:], strict=False):
-        if isinstance(element, Group):
-            temperature = _value(solution, element.surface_temperature)
-        elif isinstance(following, Group):
-            temperature = _value(solution, following.surface_temperature)
-        elif element.second_temperature:
-            temperature = _value(solution, element.second_temperature)
-        else:
-            area = _value(solution, chain.surfaces[element.surface].area)
-            temperature = (
-                temperature - _value(solution, "solution/Q") * _value(solution, element.resistance) / area
-            )
-        if name == f"{element.name} to {following.name}":
-            return temperature
-    return None
-
-
 def _pressure_drop(chain: Chain, solution: Solution, stream: str) -> Array | None:
     for _, branch, drop in drops(chain):
         if branch.stream == stream:
             evaluate_pressure_drops(chain, solution)
-            return _value(solution, drop.total.coefficient)
+            return solution.figure(drop.total.coefficient)
     return None
 
 
@@ -118,5 +89,5 @@ def _of_stream(chain: Chain, solution: Solution, name: str) -> Array | None:
             if found[1] == "speed" and state.flow_kind == "speed":
                 step = state.flow
             if step in solution.values:
-                return _value(solution, step)
+                return solution.figure(step)
     return None

@@ -14,14 +14,7 @@ import numpy as np
 
 from calcbook.calcfile.calculation import Acceptance
 from calcbook.chain.allowance import LARGEST_ALLOWANCE
-from calcbook.chain.analysis import (
-    CONTROLLING_SHARE,
-    ResultFigures,
-    allowance_figures,
-    criterion_figures,
-    result_figures,
-    surfaces_at_ends,
-)
+from calcbook.chain.analysis import criterion_figures
 from calcbook.chain.checks import (
     check_margins,
     check_states,
@@ -31,6 +24,7 @@ from calcbook.chain.checks import (
 )
 from calcbook.chain.completing import completed
 from calcbook.chain.ends import EndState, end_states, id_at
+from calcbook.chain.figures import ResultFigures, allowance_figures, result_figures, surfaces_at_ends
 from calcbook.chain.findings import (
     WallLimit,
     along_pressures,
@@ -49,6 +43,7 @@ from calcbook.chain.outcome import CaseOutcome
 from calcbook.chain.possible import impossible_steps
 from calcbook.chain.pressure import drops, evaluate_pressure_drops, law_choice
 from calcbook.chain.solve import Solution, conditions_of, halves_of, numbers_in, solve_both
+from calcbook.chain.term_rows import CONTROLLING_SHARE
 from calcbook.chain.types import (
     CONDITIONS,
     SERVICE,

@@ -5,7 +5,8 @@ from __future__ import annotations
 import numpy as np
 
 from calcbook.calcfile.calculation import Swept
-from calcbook.chain.analysis import ResultFigures, is_found_later
+from calcbook.chain.analysis import is_found_later
+from calcbook.chain.figures import ResultFigures
 from calcbook.chain.flips_outcome import LIMIT
 from calcbook.chain.outcome import Result, Solved
 from calcbook.chain.samples import BROKEN, Samples, evaluate_samples, phases_of
