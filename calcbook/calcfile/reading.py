@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import datetime
-import itertools
 import keyword
 import math
 import re
@@ -13,10 +12,8 @@ from pathlib import Path
 
 from calcbook.calcfile import descriptions as described
 from calcbook.calcfile.calculation import (
-    Acceptance,
     Assumption,
     Calculation,
-    Criterion,
     Deposit,
     Derived,
     Duty,
@@ -36,20 +33,20 @@ from calcbook.calcfile.calculation import (
 )
 from calcbook.calcfile.duty import read_duty
 from calcbook.calcfile.empty import is_empty
+from calcbook.calcfile.fluids import read_fluid, read_fluid_record
 from calcbook.calcfile.in_service import read_cleaning, read_time_in_service
+from calcbook.calcfile.judging import read_acceptance, read_accepted
 from calcbook.calcfile.links import LinkText, Resolve
 from calcbook.calcfile.meaning import meaning_of
 from calcbook.calcfile.specified import read_specified
 from calcbook.calcfile.survey_reading import read_survey
 from calcbook.calcfile.sweeping import read_sweep
-from calcbook.calcfile.tablefile import read_table_file
 from calcbook.calcfile.uncertainty import read_uncertainty
 from calcbook.documents import Description, Document, Fields, Node, Scalar, Sequence, read_file, read_mapping
 from calcbook.documents import Mapping as MappingNode
 from calcbook.faults import Collector, Faults, Place, nearest_names, shown
 from calcbook.formulas import Relation, RelationFault, parse_expression
 from calcbook.quantities import (
-    DIMENSIONLESS,
     Quantity,
     QuantityFault,
     QuantityKind,
@@ -78,7 +75,6 @@ PAGES = ("register.md", "library.md", "verification.md")
 DEVICES = frozenset(
     ("con", "prn", "aux", "nul", *(f"{port}{number}" for port in ("com", "lpt") for number in range(1, 10)))
 )
-FLUID_KINDS = ("mixture", "humid air", "petroleum", "table", "table file", "constants")
 TOLERANCES = ("rectangular", "triangular", "standard", "expanded")
 DEGREES = "degrees of freedom"
 CASE_WORDS = ("all", "base", "clean", "service")
@@ -179,7 +175,9 @@ class Reader:
         head = self.mapping("calculation", described.HEAD)
         givens = self.givens()
         derived = self.derived(givens)
-        self.fluids = {key.text: self.fluid_record(key.text, value) for key, value in self.entries("fluids")}
+        self.fluids = {
+            key.text: read_fluid_record(self, key.text, value) for key, value in self.entries("fluids")
+        }
         terms = self.terms(self.fields.node("resistances"))
         cases = self.cases(givens)
         duty = read_duty(self)
@@ -204,10 +202,10 @@ class Reader:
             streams=streams,
             geometry=self.geometry(),
             resistances=terms if self.terms_hold else (),
-            acceptance=self.acceptance(),
+            acceptance=read_acceptance(self),
             report=self.report(),
             cases=cases,
-            accept=self.accept(cases),
+            accept=read_accepted(self, cases),
             settings=self.settings,
             meaning=self.meaning(),
             place=self.place,
@@ -657,7 +655,7 @@ class Reader:
         fields = read_mapping(node, described.STREAM, self.collector, node.place)
         return Stream(
             key.text,
-            self.fluid(fields.node("fluid")),
+            read_fluid(self, fields.node("fluid")),
             self.stream_temperature(fields, node),
             self.value(fields.node("pressure")),
             self.value(fields.node("flow"), described.FLOW),
@@ -691,182 +689,6 @@ class Reader:
             return None
         fields = read_mapping(node, described.NON_CONDENSABLE, self.collector, node.place)
         return self.value(fields.node("mole fraction"))
-
-    def fluid(self, node: Node | None, name_here: str = "fluid of the stream") -> FluidText | None:
-        """A fluid, or None where there is none or it has a fault; ``name_here`` names one that is written in place."""
-        if node is None:
-            return None
-        if isinstance(node, Scalar):
-            name = " ".join(node.text.split())
-            place = node.part(1, len(node.text) + 1)
-            return self.fluids[name] if name in self.fluids else FluidText("name", name, place)
-        return self.fluid_record(name_here, node)
-
-    def fluid_record(self, name: str, node: Node) -> FluidText | None:
-        fields = read_mapping(node, described.FLUID, self.collector, node.place)
-        kinds = [key for key in FLUID_KINDS if key in fields]
-        for other in kinds[1:]:
-            self.refuse_pair(fields, kinds[0], other)
-        if not kinds:
-            if isinstance(node, MappingNode) and not self.has_fault_in(node):
-                self.collector.add(
-                    "key-missing",
-                    node.place,
-                    "a fluid is a name, a mixture, humid air, a petroleum liquid, a table or constants",
-                    expected=" | ".join(f"{kind}: …" for kind in FLUID_KINDS),
-                )
-            return None
-        source = fields.text("source")
-        if kinds[0] != "petroleum":
-            self.refuse_pair(fields, kinds[0], "viscosity")
-        if kinds[0] == "mixture":
-            return self.mixture(fields, source, node)
-        for key in ("mass fraction", "volume fraction"):
-            self.refuse_pair(fields, kinds[0], key)
-        if kinds[0] == "humid air":
-            return self.humid_air(fields, source)
-        if kinds[0] == "petroleum":
-            return self.petroleum(fields, name, source, node.place)
-        if kinds[0] == "table file":
-            return self.table_file(fields, name, source, node.place)
-        body = fields.node(kinds[0])
-        assert body is not None
-        return self.fluid_table(name, kinds[0], body, source, node.place)
-
-    def mixture(self, fields: Fields, source: str, node: Node) -> FluidText | None:
-        self.refuse_pair(fields, "mass fraction", "volume fraction")
-        basis = next((key for key in ("mass fraction", "volume fraction") if key in fields), "")
-        if not basis:
-            self.collector.add(
-                "key-missing",
-                node.place,
-                "a mixture says its mass or volume fraction",
-                expected="mass fraction: 40 %",
-            )
-            return None
-        return FluidText(
-            "mixture",
-            fields.text("mixture"),
-            fields.place_of("mixture"),
-            basis,
-            self.value(fields.node(basis)),
-            source=source,
-        )
-
-    def humid_air(self, fields: Fields, source: str) -> FluidText | None:
-        body = fields.node("humid air")
-        assert body is not None
-        inner = read_mapping(body, described.HUMID_AIR, self.collector, body.place)
-        self.refuse_pair(inner, "relative humidity", "humidity ratio")
-        basis = next(iter(inner), "")
-        if not basis:
-            if isinstance(body, MappingNode) and not self.has_fault_in(body):
-                self.collector.add(
-                    "key-missing",
-                    body.place,
-                    "humid air says its humidity",
-                    expected="relative humidity: 60 % | humidity ratio: 0.012",
-                )
-            return None
-        humidity = self.value(inner.node(basis))
-        return FluidText("humid air", "humid air", body.place, basis, humidity, source=source)
-
-    def petroleum(self, fields: Fields, name: str, source: str, place: Place) -> FluidText | None:
-        body = fields.node("petroleum")
-        inner = read_mapping(body, described.PETROLEUM, self.collector, place)
-        density = self.value(inner.node("relative density"))
-        viscosity = fields.node("viscosity")
-        astm: tuple[tuple[Value, Value], ...] = ()
-        if viscosity is not None:
-            points = viscosity.get("astm d341") if isinstance(viscosity, MappingNode) else None
-            astm = self.astm_points(points if points is not None else viscosity, viscosity.place)
-            if not astm:
-                return None
-        if density is None:
-            return None
-        return FluidText(
-            "petroleum", name, place, "relative density", density, astm=astm, source=source,
-            product=inner.text("product"),
-        )  # fmt: skip
-
-    def table_file(self, fields: Fields, name: str, source: str, place: Place) -> FluidText | None:
-        scalar = fields.scalar("table file")
-        assert scalar is not None
-        if not re.fullmatch(r"[A-Za-z0-9][A-Za-z0-9 _.-]{0,99}", scalar.text):
-            self.collector.add(
-                "name-not-allowed",
-                scalar.place,
-                "a table file stands beside the calculation file",
-                found=shown(scalar.text),
-                expected="the bare name of a CSV file, such as oil.csv",
-            )
-            return None
-        columns = read_table_file(self.folder / scalar.text, scalar.place, self.collector)
-        self.side_files[scalar.text] = {
-            column: [value.text for value in values] for column, values in (columns or {}).items()
-        }
-        return (
-            FluidText("table", name, place, columns=columns, source=source) if columns is not None else None
-        )
-
-    def fluid_table(self, name: str, kind: str, body: Node, source: str, place: Place) -> FluidText | None:
-        before = len(tuple(self.collector))
-        fields = read_mapping(body, described.FLUID_TABLE, self.collector, body.place)
-        columns: dict[str, tuple[Value, ...]] = {}
-        astm: tuple[tuple[Value, Value], ...] = ()
-        for column in fields:
-            node = fields.node(column)
-            points = node.get("astm d341") if isinstance(node, MappingNode) else None
-            if points is not None and node is not None:
-                astm = self.astm_points(points, node.place)
-                continue
-            items = node.items if isinstance(node, Sequence) else (node,)
-            columns[column] = tuple(value for item in items if (value := self.value(item)) is not None)
-        for column, values in columns.items():
-            symbols = [value for value in values if value.symbol]
-            for value in symbols:
-                self.collector.add(
-                    "unit-missing",
-                    value.place,
-                    "a fluid's property is a number with its unit",
-                    found=value.text,
-                    expected="a number with its unit, no symbol",
-                )
-            rows = len(columns.get("T", ()))
-            if kind == "table" and rows and len(values) != rows:
-                self.collector.add(
-                    "table-row-length",
-                    fields.place_of(column),
-                    f"`{column}` has {len(values)} entries, T has {rows}",
-                    expected=f"{rows} entries",
-                )
-            elif kind == "constants" and len(values) != 1:
-                self.collector.add(
-                    "table-row-length",
-                    fields.place_of(column),
-                    f"`{column}` has {len(values)} entries, a constant has one",
-                    expected="one figure",
-                )
-        if len(tuple(self.collector)) > before:
-            return None
-        return FluidText(kind, name, place, columns=columns, astm=astm, source=source)
-
-    def astm_points(self, node: Node, place: Place) -> tuple[tuple[Value, Value], ...]:
-        points = []
-        for item in node.items if isinstance(node, Sequence) else ():
-            pair = [self.value(part) for part in item.items] if isinstance(item, Sequence) else []
-            if len(pair) == 2 and pair[0] is not None and pair[1] is not None:
-                points.append((pair[0], pair[1]))
-        if len(points) != 2:
-            self.collector.add(
-                "astm-points",
-                place,
-                "a D341 viscosity has two points",
-                found=f"{len(points)}",
-                expected="[[40 degC, 46 mm^2/s], [100 degC, 6.8 mm^2/s]]",
-            )
-            return ()
-        return tuple(points)
 
     def has_fault_in(self, node: MappingNode) -> bool:
         """Whether a key of a mapping has a fault already: what is missing may be what was mistyped."""
@@ -984,7 +806,7 @@ class Reader:
             deposit=self.deposit(fields.node("deposit"), "growth" in fields),
             growth=self.growth(fields.node("growth")),
             fins=self.fins(fields.node("fins")),
-            fluid=self.fluid(fields.node("fluid"), "fluid of the gap"),
+            fluid=read_fluid(self, fields.node("fluid"), "fluid of the gap"),
             includes=self.names_of(fields.node("includes")),
             holds_for=self.range_of(fields.node("holds for")),
             scales_with=self.factor(fields.scalar("scales with")),
@@ -1188,62 +1010,6 @@ class Reader:
 
     # -- acceptance, report, cases ------------------------------------------------------------------
 
-    def acceptance(self) -> tuple[Criterion, ...]:
-        result = []
-        for item in self.items("acceptance"):
-            fields = read_mapping(item, described.CRITERION, self.collector, item.place)
-            scalar = fields.scalar("that")
-            if scalar is None:
-                continue
-            criterion = self.criterion(scalar, fields.text("source"))
-            if criterion is not None:
-                result.append(criterion._replace(probability=self.probability(fields)))
-        return tuple(result)
-
-    def probability(self, fields: Fields) -> float:
-        """The share of the samples in which a criterion must hold; NaN where none is asked for."""
-        scalar = fields.scalar("probability")
-        quantity = self.quantity(scalar) if scalar is not None else None
-        if scalar is None or quantity is None:
-            return math.nan
-        if quantity.dimension != DIMENSIONLESS or not 0.0 < quantity.value < 1.0:
-            self.collector.add(
-                "number-unreadable",
-                scalar.place,
-                "this is no probability that a criterion could hold with",
-                found=shown(scalar.text),
-                expected="a share above 0 and below 100 %, such as 95 %",
-            )
-            return math.nan
-        if "uncertainty" not in self.fields:
-            self.collector.add(
-                "key-missing",
-                scalar.place,
-                "a probability is counted over samples",
-                expected="uncertainty: … in the file, which draws them",
-            )
-        return quantity.value
-
-    def criterion(self, scalar: Scalar, source: str) -> Criterion | None:
-        match = re.fullmatch(r"\s*(.+?)\s*(>=|<=|>|<)\s*([^=<>\s].*?)\s*", scalar.text, re.DOTALL)
-        if match is None:
-            self.collector.add(
-                "criterion-unreadable",
-                scalar.place,
-                "a criterion is a result, an operator and a limit",
-                found=shown(scalar.text),
-                expected="U_service >= 1000 W/(m^2 K)",
-            )
-            return None
-        limit = self.scalar_value(
-            Scalar(match.group(3), scalar.part(match.start(3) + 1, match.end(3) + 1)), source, bool(source)
-        )
-        if limit.symbol and limit.symbol not in self.symbols:
-            self.report_symbol(limit.symbol, limit.place)
-        result = " ".join(match.group(1).split())
-        place = scalar.part(match.start(1) + 1, match.end(1) + 1)
-        return Criterion(" ".join(scalar.text.split()), result, match.group(2), limit, source, place)
-
     def report(self) -> Report:
         fields = self.mapping("report", described.REPORT)
         units = fields.node("units")
@@ -1382,65 +1148,3 @@ class Reader:
                 expected="what it rests on, or who answers for it",
             )
         return text
-
-    def accept(self, cases: Mapping[str, Mapping[str, Given]]) -> tuple[Acceptance, ...]:
-        result = []
-        for item in self.items("accept"):
-            fields = read_mapping(item, described.ACCEPT, self.collector, item.place)
-            direction = next((key for key in ("down to", "up to") if key in fields), "")
-            bound = self.value(fields.node(direction)) if direction else None
-            self.refuse_pair(fields, "down to", "up to")
-            if not direction:
-                self.collector.add(
-                    "key-missing",
-                    fields.place,
-                    "an accepted check states its bound",
-                    expected="down to: … or up to: … (of the checked figure)",
-                )
-            condition, case = self._acts_in(fields.scalar("in"), cases)
-            check = " / ".join(part.strip() for part in fields.text("check").split("/"))
-            result.append(
-                Acceptance(
-                    check,
-                    condition,
-                    case,
-                    direction,
-                    bound,
-                    self.saying(fields, "because"),
-                    self.saying(fields, "by"),
-                    self.date(fields, "date"),
-                    fields.place_of("check"),
-                )
-            )
-        for first, second in itertools.combinations(result, 2):
-            if first.meets(second):
-                self.collector.add(
-                    "accept-twice",
-                    second.place,
-                    "the check is accepted twice where both act",
-                    found=shown(second.check),
-                    expected=f"one answer to it in each condition of each case; the other is in line {first.place.line}",
-                )
-        return tuple(result)
-
-    def _acts_in(
-        self, node: Scalar | None, cases: Mapping[str, Mapping[str, Given]]
-    ) -> tuple[str, str | None]:
-        """Condition and case of an acceptance; empty and None stand for every one."""
-        known: dict[str, tuple[str, str | None]] = {"all": ("", None), "clean": ("clean", None)}
-        known |= {"service": ("service", None)}
-        plain = (*known, "base", *cases)
-        for name in ("base", *cases):
-            case = "" if name == "base" else name
-            known[name] = ("", case)
-            known |= {f"{name} {condition}": (condition, case) for condition in ("clean", "service")}
-        if node is not None and node.text not in known:
-            self.collector.add(
-                "accept-unknown",
-                node.place,
-                f"`{shown(node.text)}` is no condition or case",
-                found=shown(node.text),
-                expected=f"{', '.join(plain)}, or a case with a condition behind it, as in `base service`",
-                nearest=nearest_names(node.text, known),
-            )
-        return known.get(node.text if node is not None else "all", ("", None))
