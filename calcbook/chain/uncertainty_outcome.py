@@ -115,6 +115,14 @@ class Chance(NamedTuple):
     deviation: float
 
 
+class CaseChance(NamedTuple):
+    """How often a criterion that asks for a probability holds in a case other than the assessed one."""
+
+    case: str
+    chance: Chance
+    answered: int
+
+
 class OutsideRow(NamedTuple):
     """A limit that samples leave: how many of them, and its state at the stated values."""
 
@@ -163,7 +171,8 @@ class Spread(NamedTuple):
 class Uncertainty(NamedTuple):
     """The uncertainty of a calculation's results in one case; the empty name is the base case.
 
-    ``elsewhere`` holds what the criteria judge in the other cases, ``without`` those that have none, each with the reason.
+    ``elsewhere`` holds what the criteria judge in the other cases, ``chances`` how often those hold there that ask for
+    a probability; ``without`` are the cases that have none of it, each with the reason.
     """
 
     case: str
@@ -174,8 +183,18 @@ class Uncertainty(NamedTuple):
     exact_allowances: tuple[str, ...]
     sampling: Sampling | None = None
     elsewhere: tuple[Spread, ...] = ()
+    chances: tuple[CaseChance, ...] = ()
     without: tuple[tuple[str, str], ...] = ()
 
     def spread(self, case: str, result: str) -> Spread | None:
         """First order of a result in a case that is not the assessed one; None where none is worked out."""
         return next((one for one in self.elsewhere if (one.case, one.result) == (case, result)), None)
+
+    def chance(self, case: str, criterion: str) -> CaseChance | None:
+        """How often a criterion holds over the samples of a case; None where it is not sampled."""
+        if case == self.case and self.sampling is not None:
+            answered = self.sampling.trials - self.sampling.unanswered
+            known = [CaseChance(case, chance, answered) for chance in self.sampling.chances]
+        else:
+            known = [one for one in self.chances if one.case == case]
+        return next((one for one in known if one.chance.id == criterion), None)

@@ -33,6 +33,15 @@ def uncertainty_data(found: Uncertainty) -> Data:
             }
             for one in found.elsewhere
         ],
+        "probabilities_in_other_cases": [
+            {
+                "case": one.case,
+                "criterion": one.chance.id,
+                "probability": rounded(one.chance.probability),
+                "samples_with_an_answer": one.answered,
+            }
+            for one in found.chances
+        ],
         "samples": _samples(found.sampling) if found.sampling is not None else None,
     }
 
@@ -45,11 +54,16 @@ def displayed_uncertainty(found: Uncertainty) -> Iterator[tuple[str, list[str]]]
     for spread in found.elsewhere:
         name = f"uncertainty {spread.result} in {spread.case or 'base'} / expanded"
         yield name, [f"{spread.expanded:.2g}", spread.kind.unit]
+    for one in found.chances:
+        yield (
+            f"uncertainty samples {one.chance.id} in {one.case or 'base'}",
+            [f"{one.chance.probability:.4f}", "1"],
+        )
     if found.sampling is None:
         return
-    for one in found.sampling.results:
-        yield f"uncertainty samples {one.result} / standard", [f"{one.standard:.2g}", one.kind.unit]
-        yield f"uncertainty samples {one.result} / first order", [_verdict(one), ""]
+    for result in found.sampling.results:
+        yield f"uncertainty samples {result.result} / standard", [f"{result.standard:.2g}", result.kind.unit]
+        yield f"uncertainty samples {result.result} / first order", [_verdict(result), ""]
     for chance in found.sampling.chances:
         yield f"uncertainty samples {chance.id}", [f"{chance.probability:.4f}", "1"]
 

@@ -5,7 +5,6 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 from dataclasses import replace
-from statistics import NormalDist
 
 import numpy as np
 
@@ -18,10 +17,11 @@ from calcbook.chain.factors import with_factors
 from calcbook.chain.measured import Measured, measured
 from calcbook.chain.outcome import CaseOutcome, CriterionResult, Result, Solved
 from calcbook.chain.sensitivity import derivatives
-from calcbook.chain.types import Chain, Layer
+from calcbook.chain.types import Chain, Layer, OpenItem
 from calcbook.chain.uncertainty_outcome import (
     Budget,
     BudgetRow,
+    CaseChance,
     Chance,
     CorrelationRow,
     LeftOut,
@@ -70,14 +70,17 @@ def with_uncertainty(solved: Solved, collector: Collector) -> Solved:
     correlations = _correlations(asked, figures, collector)
     if collector or not results:
         return solved
-    elsewhere, without = _elsewhere(solved, case, chain, correlations)
+    elsewhere, chances, without = _elsewhere(solved, case, chain, correlations)
     found = _Assessment(case, chain, (*figures, *factors), left_out, results, correlations, asked)
-    return replace(solved, uncertainty=found.uncertainty()._replace(elsewhere=elsewhere, without=without))
+    return replace(
+        solved,
+        uncertainty=found.uncertainty()._replace(elsewhere=elsewhere, chances=chances, without=without),
+    )
 
 
 def judged_by_probability(solved: Solved, collector: Collector) -> Solved:
-    """A solved calculation whose criteria with a probability are judged by the samples of the assessed case, and in the
-    others by first order.
+    """A solved calculation whose criteria with a probability are judged by the samples of their case; where a case has
+    none, an open item says why.
 
     Code: result-not-propagated, for a criterion that the samples cannot show.
     """
@@ -85,20 +88,21 @@ def judged_by_probability(solved: Solved, collector: Collector) -> Solved:
     found = solved.uncertainty
     if found is None or found.sampling is None or all(math.isnan(item.probability) for item in acceptance):
         return solved
-    chances = {chance.id: chance for chance in found.sampling.chances}
+    reasons = dict(found.without)
     cases = []
     for case in solved.cases:
-        criteria = []
+        criteria, items = [], []
         for row in case.criteria:
             asked = solved.chain.calculation.criterion(row.id)
             if not math.isnan(asked.probability):
                 row = row._replace(required=asked.probability)
-                if case.name == found.case:
-                    row = _by_chance(row, asked, chances.get(row.id), collector)
+                known = found.chance(case.name, row.id)
+                if known is not None or case.name == found.case:
+                    row = _by_chance(row, asked, known.chance if known is not None else None, collector)
                 else:
-                    row = _by_first_order(row, found.spread(case.name, asked.result))
+                    items.append(_not_judged(row, reasons.get(case.name, "")))
             criteria.append(row)
-        cases.append(replace(case, criteria=tuple(criteria)))
+        cases.append(replace(case, criteria=tuple(criteria), open_items=(*case.open_items, *items)))
     return replace(solved, cases=tuple(cases))
 
 
@@ -118,21 +122,20 @@ def _by_chance(
     return row._replace(met=reached >= row.required, reached=reached, stated_met=row.met)
 
 
-def _by_first_order(row: CriterionResult, spread: Spread | None) -> CriterionResult:
-    """A criterion in a case that is not sampled: its margin is taken as normal with the standard uncertainty of what it
-    judges. Without one it stays as the stated values have it."""
-    if spread is None or not spread.standard > 0.0 or not math.isfinite(row.margin):
-        return row
-    reached = NormalDist().cdf(row.margin / spread.standard)
-    return row._replace(met=reached >= row.required, reached=reached, stated_met=row.met)
+def _not_judged(row: CriterionResult, reason: str) -> OpenItem:
+    why = f": {reason}" if reason else ""
+    text = f"{row.id}, {row.that}, asks for a probability that is not worked out in case {row.case or 'base'}{why}."
+    return OpenItem(f"{row.id}/probability in {row.case or 'base'}", "check", text)
 
 
 def _elsewhere(
     solved: Solved, assessed: CaseOutcome, chain: Chain, correlations: Correlations
-) -> tuple[tuple[Spread, ...], tuple[tuple[str, str], ...]]:
-    """What the criteria judge in the cases that are not the assessed one, and the cases without any, with the reason."""
+) -> tuple[tuple[Spread, ...], tuple[CaseChance, ...], tuple[tuple[str, str], ...]]:
+    """What the criteria judge in the cases that are not the assessed one, how often those hold that ask for a
+    probability, and the cases without any of it, with the reason."""
     asked = chain.calculation.uncertainty
     found: list[Spread] = []
+    chances: list[CaseChance] = []
     without = []
     for case in (case for case in solved.cases if case is not assessed):
         named = dict.fromkeys(chain.calculation.criterion(row.id).result for row in case.criteria)
@@ -150,7 +153,12 @@ def _elsewhere(
         factors, left_out = method_figures(chain, case.solutions)
         one = _Assessment(case, chain, (*figures, *factors), left_out, results, correlations, asked)
         found += one.spreads()
-    return tuple(found), tuple(without)
+        unsure = [
+            row.id for row in case.criteria if not math.isnan(chain.calculation.criterion(row.id).probability)
+        ]
+        if unsure and asked is not None:
+            chances += one.chances(unsure)
+    return tuple(found), tuple(chances), tuple(without)
 
 
 def _results(
@@ -372,6 +380,16 @@ class _Assessment:
             found.marks.get(OUTSIDE_ANY, 0),
             GENERATOR,
         )
+
+    def chances(self, wanted: Sequence[str]) -> list[CaseChance]:
+        """How often some criteria hold over the samples."""
+        sampling = self._sampling(self._budgets(is_wide=False))
+        if sampling is None:
+            return []
+        answered = sampling.trials - sampling.unanswered
+        return [
+            CaseChance(self.case.name, chance, answered) for chance in sampling.chances if chance.id in wanted
+        ]
 
     def _statements(self) -> tuple[list[Statement], dict[str, tuple[str, bool]], tuple[str, ...]]:
         """What is counted over the samples: every criterion that they can show, and a margin above zero.

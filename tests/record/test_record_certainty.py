@@ -336,7 +336,7 @@ def test_a_stream_that_would_lose_more_pressure_than_it_has_is_an_open_item(tmp_
 
 
 def test_a_probability_that_no_case_works_out_is_told_among_the_questions(tmp_path: Path) -> None:
-    """The samples are of the base case, and a case that has no first order stands at the stated values alone: here a
+    """The samples are of the base case, and a case without an uncertainty stands at the stated values alone: here a
     tolerance of 2 kg/s would take its flow below zero."""
     text = (CALCS / "hc-985.yaml").read_text(encoding="utf-8")
     assert "cases:" not in text and "probability: 95 %" in text and text.count("tolerance: 4 %") == 1
@@ -349,3 +349,5 @@ def test_a_probability_that_no_case_works_out_is_told_among_the_questions(tmp_pa
     record = record_text(solve_file(path))
     row = next(line for line in record.split("\n") if "| Are the acceptance criteria met? |" in line)
     assert "without the probability asked for: criterion 1 in case low." in row
+    (item,) = [item for item in solve_file(path).open_items if item.id == "criterion 1/probability in low"]
+    assert "the tolerance of `m_c` takes it below what it can be" in item.text

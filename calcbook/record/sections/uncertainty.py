@@ -66,27 +66,19 @@ def certainty_words(found: Uncertainty | None, item: CriterionResult) -> str:
     """
     if found is None or item.words:
         return ""
-    if item.case == found.case and found.sampling is not None:
-        for chance in found.sampling.chances:
-            if chance.id == item.id:
-                answered = found.sampling.trials - found.sampling.unanswered
-                lacking = _lacking(missing_terms(found), ", without")
-                if not math.isnan(item.required):
-                    as_stated = "met" if item.is_met_as_stated else "not met"
-                    return (
-                        f": it holds with {_chance(chance.probability, answered)}{lacking}, and"
-                        f" {percent(item.required)} is asked for; {as_stated}{AT_STATED}"
-                    )
-                return f"{AT_STATED}; holds with {_chance(chance.probability, answered)}{lacking}"
-    if not math.isnan(item.required):
-        spread = found.spread(item.case, result_of(item))
-        if spread is None or math.isnan(item.reached):
-            return f"{AT_STATED}; the probability that is asked for is worked out in {_case(found)} alone"
+    known_chance = found.chance(item.case, item.id)
+    if known_chance is not None:
+        held = _chance(known_chance.chance.probability, known_chance.answered)
+        lacking = _lacking(_missing_in(found, item.case), ", without")
+        if math.isnan(item.required):
+            return f"{AT_STATED}; holds with {held}{lacking}"
         as_stated = "met" if item.is_met_as_stated else "not met"
         return (
-            f": by first order it holds with {percent(item.reached)}{_lacking(spread.missing, ', without')}, and"
-            f" {percent(item.required)} is asked for; {as_stated}{AT_STATED}"
+            f": it holds with {held}{lacking}, and {percent(item.required)} is asked for;"
+            f" {as_stated}{AT_STATED}"
         )
+    if not math.isnan(item.required):
+        return f"{AT_STATED}; the probability that is asked for is not worked out"
     known = _expanded(found, item)
     if known is None:
         return f"{AT_STATED}; its uncertainty is not worked out"
@@ -114,6 +106,13 @@ def _expanded(found: Uncertainty, item: CriterionResult) -> tuple[float, tuple[s
         return spreads.get(result)
     spread = found.spread(item.case, result)
     return (spread.expanded, spread.missing) if spread is not None else None
+
+
+def _missing_in(found: Uncertainty, case: str) -> tuple[str, ...]:
+    """The terms whose method has no part in the uncertainty of a case."""
+    if case == found.case:
+        return missing_terms(found)
+    return next((one.missing for one in found.elsewhere if one.case == case), ())
 
 
 def missing_terms(found: Uncertainty) -> tuple[str, ...]:
