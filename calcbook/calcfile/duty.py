@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING
 from calcbook.calcfile import descriptions as described
 from calcbook.calcfile.calculation import Duty, DutySide
 from calcbook.documents import Fields, read_mapping
+from calcbook.documents import Mapping as MappingNode
 from calcbook.faults import Place, nearest_names, shown
 
 if TYPE_CHECKING:
@@ -87,6 +88,18 @@ def _check(reader: Reader, duty: Duty, fields: Fields) -> None:
             fields.place_of("shells"),
             f"`shells` has no meaning for {duty.arrangement}",
             "arrangement: shell and tube",
+        )
+    geometry = reader.fields.node("geometry")
+    if (
+        "installed area" in fields
+        and isinstance(geometry, MappingNode)
+        and geometry.get("plugged") is not None
+    ):
+        _refuse(
+            reader,
+            fields.place_of("installed area"),
+            "a stated area does not say whether it counts the plugged tubes",
+            "no installed area: that of the geometry is of the open tubes",
         )
     if "parts" in fields and duty.arrangement and duty.arrangement not in CUT_ARRANGEMENTS:
         _refuse(

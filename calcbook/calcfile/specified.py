@@ -38,8 +38,10 @@ def read_specified(reader: Reader, terms: tuple[Term, ...]) -> FoulingSpecified 
     assert value is not None
     value.is_share(stated[0], reader.collector)
     open_terms = [term.name for term in terms if is_open(term)]
-    split = _split(reader, fields.node("split"), _alone_on_sides(terms))
-    _check_split(reader, node, split, open_terms)
+    sides = _open_on_sides(terms)
+    alone = {side: names[0] for side, names in sides.items() if len(names) == 1}
+    split = _split(reader, fields.node("split"), alone)
+    _check_split(reader, node, split, open_terms, sides)
     return FoulingSpecified(stated[0], value, split, node.place)
 
 
@@ -49,8 +51,8 @@ def is_open(term: Term) -> bool:
     return term.kind == "fouling" and not stated and term.deposit is None and term.growth is None
 
 
-def _alone_on_sides(terms: tuple[Term, ...]) -> dict[str, str]:
-    """The open term of each side that has one alone: `inside` and `outside` of a split stand for them."""
+def _open_on_sides(terms: tuple[Term, ...]) -> dict[str, list[str]]:
+    """The open terms by side: `inside` and `outside` of a split stand for the only one there, unless a term is called so."""
     walls = [place for place, term in enumerate(terms) if term.kind == "wall"]
     if not walls:
         return {}
@@ -59,7 +61,7 @@ def _alone_on_sides(terms: tuple[Term, ...]) -> dict[str, str]:
         "outside": [term.name for term in terms[walls[-1] :] if is_open(term)],
     }
     called = {term.name for term in terms}
-    return {side: names[0] for side, names in sides.items() if len(names) == 1 and side not in called}
+    return {side: names for side, names in sides.items() if side not in called}
 
 
 def _split(reader: Reader, node: Node | None, sides: dict[str, str]) -> dict[str, Value]:
@@ -77,10 +79,23 @@ def _split(reader: Reader, node: Node | None, sides: dict[str, str]) -> dict[str
     return found
 
 
-def _check_split(reader: Reader, node: Node, split: dict[str, Value], open_terms: list[str]) -> None:
+def _check_split(
+    reader: Reader,
+    node: Node,
+    split: dict[str, Value],
+    open_terms: list[str],
+    sides: dict[str, list[str]],
+) -> None:
     """Every open term has its share, and the shares make one."""
     for name, value in split.items():
-        if name not in open_terms:
+        if len(sides.get(name, ())) > 1:
+            _refuse(
+                reader,
+                node,
+                f"more than one term is open {name}, and `{name}` does not say which",
+                f"a share for each of {', '.join(sides[name])}",
+            )
+        elif name not in open_terms:
             reader.collector.add(
                 "term-unknown",
                 value.place,

@@ -49,8 +49,9 @@ SIDES = ("hot", "cold")
 # Balances of plant data close within these parts of the duty; beyond the first the flows or temperatures are
 # not those of one state, beyond the second they cannot be rated.
 CLOSURE_CAUTION, CLOSURE_RANGE = "0.05", "0.1"
-# An area that is rounded, or counted without the tube sheets, agrees with its geometry this well: common practice.
-SAME_AREA = "0.05"
+# An area that is rounded, or counted without the tube sheets, agrees with its geometry this well; beyond the second it
+# is that of another surface, or of another unit: common practice.
+SAME_AREA, LIKE_AREA = "0.05", "0.1"
 EFFECTIVENESS = {
     "counterflow": "effectiveness-counterflow",
     "parallel flow": "effectiveness-parallel-flow",
@@ -459,13 +460,11 @@ class DutyLayout:
         if self.duty.installed_area is None:
             return area
         stated = self.scope.value(self.duty.installed_area, "area", OWNER, "installed area")
-        self._check(
-            "area / installed",
-            f"abs(A_inst/A_geo - 1) <= {SAME_AREA}",
-            "caution",
-            "the films are worked out in a geometry of another area than the stated one",
-            {"A_inst": stated, "A_geo": area},
-        )
+        figures = {"A_inst": stated, "A_geo": area}
+        because = "the films are worked out in a geometry of another area than the stated one"
+        for name, level, part in (("stated", "range", LIKE_AREA), ("closely stated", "caution", SAME_AREA)):
+            that = f"abs(A_inst/A_geo - 1) <= {part}"
+            self._check(f"area / {name}", that, level, because, figures)
         return stated
 
     def _changes_phase(self, heat: str) -> None:

@@ -17,7 +17,7 @@ from calcbook.documents import Mapping as MappingNode
 from calcbook.documents import Sequence as ListNode
 from calcbook.faults import Fault, Faults, Place, nearest_names, shown
 from calcbook.quantities import QuantityKind
-from calcbook.record.numbers import PLAIN_DIGITS, apart, report_unit, unit_text, with_unit
+from calcbook.record.numbers import PLAIN_DIGITS, apart, percent, report_unit, unit_text, with_unit
 from calcbook.revisions.attribution import Attribution, attribute
 from calcbook.revisions.changes import Change, changes_between, entries_of, merged
 from calcbook.revisions.mixtures import woven
@@ -137,7 +137,7 @@ class Comparison:
     """Two revisions of a calculation, compared.
 
     ``verdicts`` are criteria that flipped, ``checks`` limits that changed state, ``software_checks`` limits of the old
-    side that were in another state when its results were recorded. ``signoffs`` and ``feeds``
+    side that were in another state when its results were recorded (None where none were). ``signoffs`` and ``feeds``
     are sentences from those who know them: sign-offs that are void, calculations that take a result of this
     one.
     """
@@ -155,7 +155,7 @@ class Comparison:
     cases: tuple[ResultEffect, ...]
     attributions: tuple[Attribution, ...]
     software: tuple[SoftwarePart, ...]
-    software_checks: tuple[Verdict, ...]
+    software_checks: tuple[Verdict, ...] | None
     unchanged: tuple[Unchanged, ...]
     signoffs: tuple[str, ...] = ()
     feeds: tuple[str, ...] = ()
@@ -288,7 +288,12 @@ def _against(item: CriterionResult | None, report: Report) -> str:
     unit = report_unit(item.kind, report)
     figure = item.limit if item.words else item.value
     value, limit = apart(figure, item.limit, unit, item.kind.scale == "point", PLAIN_DIGITS)
-    return f"{item.words or value} against {with_unit(limit, unit_text(unit))}"
+    held = (
+        ""
+        if math.isnan(item.reached)
+        else (f"; holds with {percent(item.reached)}, {percent(item.required)} is asked for")
+    )
+    return f"{item.words or value} against {with_unit(limit, unit_text(unit))}{held}"
 
 
 def check_flips(old: Solved, new: Solved) -> tuple[Verdict, ...]:
@@ -396,18 +401,25 @@ def _software(old: Side, new: Side, results: Iterable[str]) -> tuple[SoftwarePar
     return tuple(found)
 
 
-def _software_checks(old: Side) -> tuple[Verdict, ...]:
-    """Limits of the old side whose recorded state is not that of now; one that came since counts where it does not hold."""
+def _software_checks(old: Side) -> tuple[Verdict, ...] | None:
+    """Limits of the old side whose recorded state is not that of now; None where no limits were recorded.
+
+    One that came or went since counts where it does not, or did not, simply hold.
+    """
     recorded = old.recorded_checks
     if not recorded:
-        return ()
+        return None
     found = []
-    for key, check in _checks_by_name(old.solved).items():
-        was = recorded.get(key, ABSENT)
-        if was == check.state or (was == ABSENT and check.state in QUIET):
-            continue
-        figure = f"{check.figure}, limit {check.limit}"
-        found.append(Verdict(check.id, check.case, check.condition, was, check.state, "", figure))
+    for case, states in recorded.items():
+        now = {key: check for key, check in _checks_by_name(old.solved).items() if check.case == case}
+        for key in merged(states, now):
+            check = now.get(key)
+            was, state = states.get(key, ABSENT), check.state if check is not None else ABSENT
+            if was == state or (ABSENT in (was, state) and was in QUIET and state in QUIET):
+                continue
+            name, condition = (check.id, check.condition) if check is not None else key.rsplit(" / ", 2)[:2]
+            figure = f"{check.figure}, limit {check.limit}" if check is not None else ""
+            found.append(Verdict(name, case, condition, was, state, "", figure))
     return tuple(found)
 
 

@@ -416,6 +416,8 @@ def _software(comparison: Comparison) -> list[Block]:
 
 
 def _software_checks(comparison: Comparison) -> list[Block]:
+    if comparison.software_checks is None:
+        return [Paragraph("No limits are recorded for the old revision.")]
     if not comparison.software_checks:
         return [Paragraph("Every limit of the old revision is in the state that was recorded.")]
     rows = tuple(
@@ -606,7 +608,7 @@ def comparison_data(comparison: Comparison) -> dict[str, object]:
             }
             for item in comparison.software
         ],
-        "software_checks": [_verdict_data(item) for item in comparison.software_checks],
+        "software_checks": [_verdict_data(item) for item in comparison.software_checks or ()],
         "checks": [_verdict_data(item) for item in comparison.checks],
         "open_items": {
             "opened": [{"id": item.id, "kind": item.kind, "text": item.text} for item in comparison.opened],

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import math
 import re
 import shutil
 import tempfile
@@ -43,6 +44,7 @@ Data = Mapping[str, object]
 
 # A column of a history is told by the first digits of its digest.
 MARK_LENGTH = 12
+LARGEST_FIGURE = 1e300
 
 
 @dataclass(frozen=True)
@@ -89,28 +91,36 @@ class Side:
         found = (self.results or {}).get("results", {})
         if not isinstance(found, Mapping):
             return {}
-        return {
-            name: float(item["value"])
-            for name, item in found.items()
-            if isinstance(item, Mapping) and isinstance(item.get("value"), int | float)
+        figures = {
+            name: _figure(item.get("value")) for name, item in found.items() if isinstance(item, Mapping)
         }
+        return {name: figure for name, figure in figures.items() if math.isfinite(figure)}
 
     @property
-    def recorded_checks(self) -> dict[str, str]:
-        """The states of the limits as they were recorded, by id, condition and case."""
+    def recorded_checks(self) -> dict[str, dict[str, str]]:
+        """The states of the limits as they were recorded, by case and then by id and condition; cases without such a
+        list are not there."""
         recorded = self.results or {}
-        groups = [("", recorded.get("checks"))]
         cases = recorded.get("cases")
-        if isinstance(cases, Mapping):
-            groups += [
-                (name, case.get("checks")) for name, case in cases.items() if isinstance(case, Mapping)
-            ]
+        groups = {"": recorded.get("checks")}
+        for name, case in cases.items() if isinstance(cases, Mapping) else ():
+            groups[name] = case.get("checks") if isinstance(case, Mapping) else None
         return {
-            check_key(str(item.get("id")), str(item.get("condition")), name): str(item.get("state"))
-            for name, items in groups
-            for item in (items if isinstance(items, list) else ())
-            if isinstance(item, Mapping)
+            name: {
+                check_key(str(item.get("id")), str(item.get("condition")), name): str(item["state"])
+                for item in items
+                if isinstance(item, Mapping) and isinstance(item.get("state"), str)
+            }
+            for name, items in groups.items()
+            if isinstance(items, list) and items
         }
+
+
+def _figure(value: object) -> float:
+    """A recorded value; NaN for what is no figure, as a damaged file may hold."""
+    if isinstance(value, bool) or not isinstance(value, int | float):
+        return math.nan
+    return float(value) if abs(value) <= LARGEST_FIGURE else math.nan
 
 
 def check_key(check: str, condition: str, case: str) -> str:

@@ -11,6 +11,7 @@ import pytest
 
 from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.solve import solve
+from calcbook.faults import Faults
 from calcbook.interface import record_text, solve_file
 
 BTU = 5.678263  # W/(m² K) of 1 Btu/(h ft² °F)
@@ -285,7 +286,8 @@ def test_a_stated_area_is_what_carries_the_duty(tmp_path: Path) -> None:
         stated / figure(own, "area_service") - 1.0, rel=1e-12
     )
     states = {check.id: check.state for check in answer.base.checks}
-    assert states["duty / area / installed"] == "outside"
+    assert states["duty / area / stated"] == states["duty / area / closely stated"] == "outside"
+    assert "duty / area / stated / service" in {item.id for item in answer.open_items}
     assert answer.rating.ledger_sum == pytest.approx(stated, rel=1e-12)
 
 
@@ -436,6 +438,36 @@ def test_a_specified_fouling_is_met_though_films_move_with_it(
         figure(answer, f"R {name} service") for name in ("tube-side deposit", "shell-side deposit")
     )
     assert inner / outer == pytest.approx(40 / 60, rel=1e-12)
+
+
+def test_a_side_with_two_open_deposits_is_told(tmp_path: Path) -> None:
+    text = (
+        RATED.read_text(encoding="utf-8").replace("resistance: R_fi, ", "").replace("resistance: R_fo, ", "")
+    )
+    lines = text.split("\n")
+    place = next(place for place, line in enumerate(lines) if "name: shell-side deposit" in line)
+    lines.insert(place, lines[place].replace("shell-side deposit", "second deposit"))
+    path = tmp_path / "rt-3.yaml"
+    path.write_text(
+        "\n".join(lines) + "fouling specified as:\n  cleanliness: {value: 80 %, source: s}\n"
+        "  split: {inside: {value: 40 %, source: s}, outside: {value: 60 %, source: s}}\n",
+        encoding="utf-8",
+    )
+    with pytest.raises(Faults) as told:
+        solve_file(path)
+    assert "more than one term is open outside, and `outside` does not say which" in str(told.value)
+
+
+def test_a_stated_area_and_plugged_tubes_do_not_go_together(tmp_path: Path) -> None:
+    path = tmp_path / "ab-901.yaml"
+    text = (RATED_COOLER.parent / "ab-901.yaml").read_text(encoding="utf-8")
+    assert "plugged:" in text and "\nduty:" not in text
+    duty = "\nduty:\n  arrangement: crossflow both unmixed\n  installed area: {value: 90 m^2, source: s}\n"
+    duty += "  hot: {stream: loop water}\n  cold: {stream: air}\n"
+    path.write_text(text + duty, encoding="utf-8")
+    with pytest.raises(Faults) as told:
+        solve_file(path)
+    assert "does not say whether it counts the plugged tubes" in str(told.value)
 
 
 @pytest.mark.parametrize(

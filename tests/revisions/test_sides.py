@@ -3,9 +3,12 @@
 from __future__ import annotations
 
 import json
+import math
 import subprocess
+from collections.abc import Callable
 from dataclasses import replace
 from pathlib import Path
+from typing import Any
 
 import pytest
 from click.testing import CliRunner
@@ -275,6 +278,33 @@ def test_what_the_software_moved_beside_what_is_asked_stands_there_too() -> None
     told = "with this software 1 limit of the old revision is in another state than recorded"
     assert told in markdown(short_blocks(comparison))
     assert f"| {check['id']} |" in page.partition("## The software's part")[2]
+
+
+def test_what_is_recorded_of_limits_is_compared_as_far_as_it_goes() -> None:
+    """A limit that is gone, a list that is damaged, a number that is none: as a merge may leave a results file."""
+    side = load_side("calcs/wc-101.yaml", ROOT, ROOT / "output")
+
+    def told(change: Callable[[Any], object]):
+        results = json.loads(json.dumps(side.results))
+        change(results)
+        return compare(replace(side, results=results), side)
+
+    gone = {"id": "hot film / gone", "condition": "service", "case": "", "state": "outside"}
+    (moved,) = told(lambda results: results["checks"].append(gone)).software_checks
+    assert (moved.what, moved.condition, moved.was, moved.now) == (
+        "hot film / gone",
+        "service",
+        "outside",
+        "not there",
+    )
+    for damage in (None, [], {}, "x"):
+        assert (
+            told(lambda results, damage=damage: results.update(checks=damage, cases=damage)).software_checks
+            is None
+        )
+    for number in (10**400, True, math.nan, "7"):
+        changed = told(lambda results, number=number: results["results"]["UA_service"].update(value=number))
+        assert not [part for part in changed.software if part.software]
 
 
 def test_results_of_other_content_are_not_taken_for_those_of_this_file(tmp_path: Path) -> None:

@@ -58,9 +58,14 @@ def brief_rows(page: Page) -> list[tuple[str, str, str]]:
 
 
 def _installed_basis(page: Page) -> str:
+    words = "as stated; UA and the heat flows at the mean temperatures stand on the area of the geometry"
+    return f"on the surface {page.basis}, {words if _is_stated(page) else 'from the geometry'}"
+
+
+def _is_stated(page: Page) -> bool:
+    """Whether the file states the installed area."""
     duty = page.calculation.duty
-    stated = duty is not None and duty.installed_area is not None
-    return f"on the surface {page.basis}, {'as stated' if stated else 'from the geometry'}"
+    return duty is not None and duty.installed_area is not None
 
 
 def _arrangement(page: Page) -> list[tuple[str, str, str]]:
@@ -114,7 +119,8 @@ def _ledger(page: Page, rating: Rating) -> list[Block]:
         (row.name, _area(page, row.area), percent(row.area / rating.ledger_sum), row.basis)
         for row in rating.ledger
     ]
-    rows.append(("sum", _area(page, rating.ledger_sum), "100.0 %", "area of all tubes, or of the wall"))
+    whole = "installed area, as stated" if _is_stated(page) else "area of all tubes, or of the wall"
+    rows.append(("sum", _area(page, rating.ledger_sum), "100.0 %", whole))
     stacked = [row for row in rating.ledger if row.is_margin and row.area > 0.0]
     words = (
         "The area of a resistance is Q/ΔT_mean times that resistance on the basis area, so that the entries add"
