@@ -43,6 +43,9 @@ class _Watched:
     found: Found
     marks: Marks = field(default_factory=dict)
     number: str = ""
+    # Whether the last answer was dropped, as its files had changed meanwhile; and whether another has its number.
+    dropped: bool = False
+    lacks_number: bool = False
 
 
 class Watch:
@@ -87,10 +90,8 @@ class Watch:
         if listed == self.listed:
             return
         self.listed = listed
-        collector = Collector()
         try:
-            files = find_calculations(self.paths, self.output, collector)
-            collector.stop_if_any()
+            files = self._found_files()
         except Faults as faults:
             if str(faults) != self.fault:
                 self.tell_fault(faults)
@@ -100,8 +101,29 @@ class Watch:
         known = {found.path: found for found in files}
         for path in [path for path in self.watched if path not in known]:
             del self.watched[path]
+            self._number_is_free()
         for path, found in known.items():
             self.watched.setdefault(path, _Watched(found)).found = found
+
+    def _found_files(self) -> tuple[Found, ...]:
+        """The calculation files. A fault counts when it is still there a little later: some editors save by deleting."""
+        for is_last in (False, True):
+            collector = Collector()
+            try:
+                files = find_calculations(self.paths, self.output, collector)
+                collector.stop_if_any()
+                return tuple(files)
+            except Faults:
+                if is_last:
+                    raise
+            time.sleep(SETTLED)
+        raise AssertionError("the second try returns or raises")
+
+    def _number_is_free(self) -> None:
+        """Have calculations that lacked their number calculated again."""
+        for item in self.watched.values():
+            if item.lacks_number:
+                item.marks = {}
 
     def _calculate(self, item: _Watched) -> None:
         """Calculate and tell, unless what was read changes meanwhile: the next look finds that it has."""
@@ -109,8 +131,12 @@ class Watch:
         made = solved_texts(item.found)
         if isinstance(made, Outcome):
             time.sleep(SETTLED)
-        if item.marks != _marks(item.marks):
+        has_changed = item.marks != _marks(item.marks)
+        # Where saves come faster than answers every second one is taken: the next look makes it good.
+        if has_changed and (isinstance(made, Outcome) or not item.dropped):
+            item.dropped = True
             return
+        item.dropped = False
         if isinstance(made, Outcome):
             self.tell(made)
             return
@@ -120,8 +146,11 @@ class Watch:
             if other is not item and other.number
         }
         outcome = written(made, taken)
-        item.number = outcome.number
+        before, item.number = item.number, outcome.number
+        item.lacks_number = made.outcome.number.casefold() in taken
         self.tell(outcome)
+        if before and before != item.number:
+            self._number_is_free()
 
     def _forget_changed_cards(self, house: Path) -> None:
         """Have the cards of a book read again where one changed."""

@@ -173,3 +173,47 @@ def test_a_card_of_the_book_is_read_again(watching: Watching) -> None:
     (watching.calcs / "cards" / card.name).write_text(text, encoding="utf-8")
     watching.wait(lambda: watching.told.count("\n") == 3, "the record with the mended card")
     assert watching.interrupt() == 0
+
+
+def test_a_number_that_becomes_free_is_taken(watching: Watching) -> None:
+    text = example("sl-301.yaml")
+    watching.save("a.yaml", text)
+    watching.save("b.yaml", text.replace("title:", "title: Second file,", 1))
+    watching.start("calcs")
+    watching.wait(lambda: "number-in-two-files" in watching.faults, "the fault")
+    assert "Second file" not in watching.record("SL-301")
+    watching.save("a.yaml", text.replace("number: SL-301", "number: SL-302", 1))
+    watching.wait(lambda: "Second file" in watching.record("SL-301"), "the record of the second file")
+    watching.wait(lambda: watching.record("SL-302") != "", "the record under the new number")
+
+
+def test_a_file_that_is_deleted_and_written_again_is_no_fault(watching: Watching) -> None:
+    """As some editors save; the folder is empty in between."""
+    text = example("sl-301.yaml")
+    watching.save("a.yaml", text)
+    watching.start("calcs")
+    watching.wait(lambda: watching.record("SL-301") != "", "the record")
+    for number in range(5):
+        title = f"Save {number},"
+        (watching.calcs / "a.yaml").unlink()
+        watching.save("a.yaml", text.replace("title:", f"title: {title}", 1))
+        watching.wait(lambda title=title: title in watching.record("SL-301"), title)
+    assert watching.faults == ""
+
+
+def test_saves_that_come_faster_than_answers_have_records_all_the_same(watching: Watching) -> None:
+    text = example("wc-101.yaml")
+    watching.save("a.yaml", text)
+    watching.start("calcs/a.yaml")
+    watching.wait(lambda: watching.record("WC-101") != "", "the record")
+    number = 0
+
+    def save_again() -> bool:
+        nonlocal number
+        number += 1
+        watching.save("a.yaml", text.replace("title:", f"title: Save {number},", 1))
+        return "Save " in watching.record("WC-101")
+
+    watching.wait(save_again, "a record while saves go on")
+    last = f"Save {number},"
+    watching.wait(lambda: last in watching.record("WC-101"), "the record of the last save")

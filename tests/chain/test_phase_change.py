@@ -167,8 +167,14 @@ def test_pool_boiling_is_held_against_another_family_without_a_word_from_the_eng
         for name in ("cooper-1984", "mostinski-1963")
     )
     assert abs(water - (cooper + mostinski) / 2.0) < abs(general - (cooper + mostinski) / 2.0)
-    cold = outside_tube("nitrogen", "liquid", "101325 Pa", "pool-boiling-tube", "82 K", named)
-    assert checks(analysed(tmp_path, cold))["film / stephan-abdelsalam-1980 / cryogenic liquids"] == "outside"
+    for fluid, pressure, surface, state in (
+        ("nitrogen", "101325 Pa", "82 K", "outside"),
+        ("oxygen", "20e5 Pa", "136 K", "outside"),
+        ("methane", "101325 Pa", "118 K", "within"),
+    ):
+        body = outside_tube(fluid, "liquid", pressure, "pool-boiling-tube", surface, named)
+        found = checks(analysed(tmp_path, body))["film / stephan-abdelsalam-1980 / cryogenic liquids"]
+        assert found == state, fluid
 
 
 def test_a_liquid_outside_the_tables_boils_with_a_stated_figure(tmp_path: Path) -> None:
