@@ -124,7 +124,7 @@ class _Builder:
         )
         self._check_temperatures(elements)
         surfaces = {element.name: shape.surfaces[element.surface].name for element in elements or ()}
-        check_linked_resistances(scope, terms, surfaces, calculation.givens)
+        check_linked_resistances(scope, calculation, surfaces)
         self._assumptions_of_engineer()
         check_services(calculation, self.collector)
         if self.collector or basis is None or elements is None:

@@ -132,6 +132,10 @@ def test_what_is_of_all_deposits_stands_for_all(tmp_path: Path, rows: list[list[
         encoding="utf-8",
     )
     assert "deposit/all deposits" not in {item.id for item in solve_file(path).open_items}
+    derived = "derived:\n  R_part: {relation: R_fo, is: the same under another name}\nstreams:"
+    through = GROWING.replace("streams:", derived, 1).replace("R_inf: R_fo", "R_inf: R_part")
+    path.write_text(through.replace(film, inside + film), encoding="utf-8")
+    assert "deposit/all deposits" in {item.id for item in solve_file(path).open_items}
     path.write_text(GROWING.replace("on: outside\n    growth", "on: inside\n    growth"), encoding="utf-8")
     items = {item.id: item.text for item in solve_file(path).open_items}
     assert "counts on the surface outside there, and acts on inside" in items["deposit/linked surface"]
