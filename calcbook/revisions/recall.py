@@ -348,7 +348,7 @@ def _as_solved_here(solved: Solved) -> Solved:
         replace(
             case,
             criteria=tuple(
-                item._replace(met=item.is_met_as_stated)
+                item._replace(met=item.is_met_as_stated, stated_met=None, required=math.nan, reached=math.nan)
                 for item in case.criteria
                 if not is_found_later(criterion(item.id).result)
             ),

@@ -226,3 +226,13 @@ def test_sentences_of_others_stand_at_the_end() -> None:
 def test_two_calculations_of_other_numbers_can_be_compared() -> None:
     page = page_of(compare(side_of(STATED), side_of(FOULED.replace("CV-1", "CV-9"))))
     assert page.startswith("# Comparison of CV-1, revision A, with CV-9, revision A\n")
+
+
+def test_a_verdict_that_a_probability_decides_shows_it() -> None:
+    """HC-985 misses its 95 %; 15 % more length meets it, with a margin that was above zero before."""
+    text = example("hc-985")
+    comparison = compare(example_side(text), example_side(with_value(text, "L", "5.61 m")))
+    (flip,) = comparison.verdicts
+    assert (flip.was, flip.now) == ("criterion not met", "criterion met")
+    assert re.search(r"0\.08\d+ against 0; holds with 8\d\.\d %, 95\.0 % is asked for", flip.figure_was)
+    assert "95.0 % is asked for" in flip.figure_now
