@@ -107,17 +107,17 @@ class Watch:
 
     def _found_files(self) -> tuple[Found, ...]:
         """The calculation files. A fault counts when it is still there a little later: some editors save by deleting."""
-        for is_last in (False, True):
-            collector = Collector()
-            try:
-                files = find_calculations(self.paths, self.output, collector)
-                collector.stop_if_any()
-                return tuple(files)
-            except Faults:
-                if is_last:
-                    raise
+        try:
+            return self._listed_files()
+        except Faults:
             time.sleep(SETTLED)
-        raise AssertionError("the second try returns or raises")
+            return self._listed_files()
+
+    def _listed_files(self) -> tuple[Found, ...]:
+        collector = Collector()
+        files = find_calculations(self.paths, self.output, collector)
+        collector.stop_if_any()
+        return files
 
     def _number_is_free(self) -> None:
         """Have calculations that lacked their number calculated again."""

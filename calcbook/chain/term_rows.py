@@ -10,7 +10,7 @@ import numpy as np
 
 from calcbook.chain.circuit import branch_coefficient
 from calcbook.chain.outcome import BranchRow, ClosureRow, TermRow
-from calcbook.chain.solve import Solution, chosen
+from calcbook.chain.solve import Solution, chosen, outward
 from calcbook.chain.types import CONDITIONS, Chain, Group, Layer
 
 Array = np.ndarray
@@ -77,12 +77,11 @@ def term_rows(chain: Chain, solution: Solution) -> tuple[TermRow, ...]:
 def _branch_rows(chain: Chain, group: Group, solution: Solution) -> tuple[BranchRow, ...]:
     area = solution.number(chain.surfaces[group.surface].area)
     surface = solution.number(group.surface_temperature) if chain.has_temperatures else math.nan
-    outward = -1.0 if group.side == "inside" else 1.0
     rows = []
     for branch in group.branches:
         coefficient = solution.number(branch_coefficient(group, branch.name))
         reference = solution.number(branch.reference) if branch.reference else math.nan
-        flow = coefficient * area * outward * (surface - reference)
+        flow = coefficient * area * outward(group) * (surface - reference)
         rows.append(BranchRow(branch.name, branch.kind, coefficient, reference, flow))
     return tuple(rows)
 

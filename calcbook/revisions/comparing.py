@@ -409,9 +409,10 @@ def _software_checks(old: Side) -> tuple[Verdict, ...] | None:
     recorded = old.recorded_checks
     if not recorded:
         return None
+    checks = _checks_by_name(old.solved)
     found = []
     for case, states in recorded.items():
-        now = {key: check for key, check in _checks_by_name(old.solved).items() if check.case == case}
+        now = {key: check for key, check in checks.items() if check.case == case}
         for key in merged(states, now):
             check = now.get(key)
             was, state = states.get(key, ABSENT), check.state if check is not None else ABSENT

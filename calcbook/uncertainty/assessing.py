@@ -152,12 +152,13 @@ def _elsewhere(
             continue
         factors, left_out = method_figures(chain, case.solutions)
         one = _Assessment(case, chain, (*figures, *factors), left_out, results, correlations, asked)
-        found += one.spreads()
+        budgets = one.budgets(is_wide=False)
+        found += one.spreads(budgets)
         unsure = [
             row.id for row in case.criteria if not math.isnan(chain.calculation.criterion(row.id).probability)
         ]
         if unsure and asked is not None:
-            chances += one.chances(unsure)
+            chances += one.chances(budgets, unsure)
     return tuple(found), tuple(chances), tuple(without)
 
 
@@ -253,7 +254,7 @@ class _Assessment:
         self.coverage = asked.coverage if asked is not None else USUAL_COVERAGE
 
     def uncertainty(self) -> Uncertainty:
-        budgets = self._budgets()
+        budgets = self.budgets()
         stated = self.asked.correlations if self.asked is not None else ()
         return Uncertainty(
             self.case.name,
@@ -287,15 +288,15 @@ class _Assessment:
 
     # -- first order --------------------------------------------------------------------------------
 
-    def spreads(self) -> list[Spread]:
-        """The expanded uncertainties alone."""
+    def spreads(self, budgets: tuple[Budget, ...]) -> list[Spread]:
+        """The expanded uncertainties of budgets alone."""
         missing = tuple(dict.fromkeys(item.term for item in self.left_out))
         return [
             Spread(self.case.name, one.result, one.kind, one.value, one.standard, one.expanded, missing)
-            for one in self._budgets(is_wide=False)
+            for one in budgets
         ]
 
-    def _budgets(self, is_wide: bool = True) -> tuple[Budget, ...]:
+    def budgets(self, is_wide: bool = True) -> tuple[Budget, ...]:
         """A budget of each result; ``is_wide`` for the slopes over a standard uncertainty beside the others."""
         model = ChainModel(self.chain, self.inputs, self.case.solutions, self.results)
         steps = {
@@ -381,9 +382,9 @@ class _Assessment:
             GENERATOR,
         )
 
-    def chances(self, wanted: Sequence[str]) -> list[CaseChance]:
-        """How often some criteria hold over the samples."""
-        sampling = self._sampling(self._budgets(is_wide=False))
+    def chances(self, budgets: tuple[Budget, ...], wanted: Sequence[str]) -> list[CaseChance]:
+        """How often some criteria hold over the samples, which are held against the budgets of their results."""
+        sampling = self._sampling(budgets)
         if sampling is None:
             return []
         answered = sampling.trials - sampling.unanswered
