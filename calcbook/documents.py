@@ -13,6 +13,7 @@ from __future__ import annotations
 import re
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass, field
+from functools import lru_cache
 from pathlib import Path
 from typing import NamedTuple
 
@@ -24,6 +25,7 @@ MAXIMUM_BYTES = 2_000_000
 MAXIMUM_DEPTH = 40
 MAXIMUM_SYNTAX_FAULTS = 20
 MENDED_UP_TO = 100_000  # characters: reading on after a fault of syntax reads the whole text again
+KEPT_DOCUMENTS = 16  # settings are read for each file of a book, sign-offs at every save under watch
 
 
 class _Loader(getattr(yaml, "CSafeLoader", yaml.SafeLoader)):  # type: ignore[misc]
@@ -110,6 +112,17 @@ def read_file(path: Path, name: str | None = None, collector: Collector | None =
 
 def read_text(text: str, name: str, collector: Collector | None = None) -> Document:
     """Read YAML text into a tree; raises ``Faults`` and fills ``collector`` as ``read_file`` does."""
+    document, traps = _read(text, name)
+    if collector is not None:
+        collector.take(traps)
+    elif traps:
+        raise Faults(traps)
+    return document
+
+
+@lru_cache(maxsize=KEPT_DOCUMENTS)
+def _read(text: str, name: str) -> tuple[Document, tuple[Fault, ...]]:
+    """The tree of a text and the traps in it; raises ``Faults`` where there is no tree to speak of."""
     text = text.removeprefix("\ufeff").replace("\r\n", "\n").replace("\r", "\n")
     lines = text.split("\n")
     whole = Place(name, 1, 1, 1, lines[0])
@@ -136,11 +149,7 @@ def read_text(text: str, name: str, collector: Collector | None = None) -> Docum
         )
         builder.collector.stop_if_any()
     root = builder.build(nodes[0], 0)
-    if collector is None:
-        builder.collector.stop_if_any()
-    else:
-        collector.take(builder.collector)
-    return Document(name, text, root)
+    return Document(name, text, root), tuple(builder.collector)
 
 
 # Control characters, what YAML takes for the end of a line and no editor does, and the marks that turn
