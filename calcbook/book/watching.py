@@ -148,6 +148,9 @@ class Watch:
         outcome = written(made, taken)
         before, item.number = item.number, outcome.number
         item.lacks_number = made.outcome.number.casefold() in taken
+        if before != item.number:
+            # The folder of its issued copies is known by its number alone.
+            item.marks |= _marks([item.found.output / item.number / ISSUED])
         self.tell(outcome)
         if before and before != item.number:
             self._number_is_free()

@@ -101,8 +101,9 @@ def _check_split(
                 value.place,
                 f"no fouling term without a resistance is called `{shown(name)}`",
                 found=shown(name),
-                expected=", ".join(open_terms) or "a term of kind fouling that states no resistance",
-                nearest=nearest_names(name, open_terms),
+                expected=", ".join([*open_terms, *_named_by_side(sides)])
+                or "a term of kind fouling that states no resistance",
+                nearest=nearest_names(name, open_terms) or nearest_names(name, _named_by_side(sides)),
             )
     missing = [name for name in open_terms if name not in split]
     if not open_terms:
@@ -120,6 +121,11 @@ def _check_split(
         )
     if any(share < 0.0 for share in shares):
         _refuse(reader, node, "a share of the split is below zero", "shares from 0 to 100 %")
+
+
+def _named_by_side(sides: dict[str, list[str]]) -> list[str]:
+    """The sides that name a term of their own: those with one open term."""
+    return [side for side, names in sides.items() if len(names) == 1]
 
 
 def _refuse(reader: Reader, node: Node, message: str, expected: str) -> None:

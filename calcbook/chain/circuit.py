@@ -118,7 +118,8 @@ class Circuit:
         self.results["heat flow"] = self._step(
             "Q",
             "Q",
-            "heat flow, inside to outside",
+            f"heat flow{'' if self.scope.calculation.duty is None else ' at the mean temperatures'},"
+            " inside to outside",
             f"q_{mark}*A_{mark}",
             {f"q_{mark}": flux, f"A_{mark}": self.shape.surfaces[self.basis].area},
             "circuit",

@@ -47,6 +47,7 @@ def result_figures(chain: Chain, solutions: Mapping[str, Solution]) -> dict[str,
         results[name] = ResultFigures(values, kinds[kind], title)
 
     table = chain.results
+    at_mean = ", at the mean temperatures" if chain.calculation.duty is not None else ""
     for condition, solution in reversed(list(solutions.items())):
         put(
             f"U_{condition}",
@@ -70,17 +71,18 @@ def result_figures(chain: Chain, solutions: Mapping[str, Solution]) -> dict[str,
             )
         put(f"UA_{condition}", solution.figure(table["UA"]), "conductance", f"conductance, {condition}")
         if "heat flux" in table:
+            # Of a rated unit they are not its duty: the difference of the means is no mean difference of the ends.
             put(
                 f"heat_flux_{condition}",
                 solution.figure(table["heat flux"]),
                 "heat flux",
-                f"heat flux, {condition}",
+                f"heat flux, {condition}{at_mean}",
             )
             put(
                 f"heat_flow_{condition}",
                 solution.figure(table["heat flow"]),
                 "heat flow",
-                f"heat flow, {condition}",
+                f"heat flow, {condition}{at_mean}",
             )
     for name in table:
         kind, _, stream = name.partition(" ")
@@ -95,7 +97,6 @@ def result_figures(chain: Chain, solutions: Mapping[str, Solution]) -> dict[str,
     put("excess_surface", clean / service - 1.0, "ratio", "excess surface, U_clean/U_service − 1")
     for condition, solution in reversed(list(solutions.items())):
         for name, value in interfaces(chain, solution):
-            at_mean = ", at the mean temperatures" if chain.calculation.duty is not None else ""
             put(f"T {name} {condition}", value, "temperature", f"temperature {name}, {condition}{at_mean}")
         for element in chain.elements:
             if isinstance(element, Group):

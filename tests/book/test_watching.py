@@ -217,3 +217,14 @@ def test_saves_that_come_faster_than_answers_have_records_all_the_same(watching:
     watching.wait(save_again, "a record while saves go on")
     last = f"Save {number},"
     watching.wait(lambda: last in watching.record("WC-101"), "the record of the last save")
+
+
+def test_an_issued_copy_that_appears_after_the_first_record_is_told(watching: Watching) -> None:
+    watching.save("book.yaml", example("book.yaml"))
+    watching.save("a.yaml", example("gc-401.yaml"))
+    watching.start("calcs/a.yaml")
+    watching.wait(lambda: watching.record("GC-401") != "", "the record")
+    made = shutil.copytree(ROOT / "output/GC-401/issued", watching.folder / "issued")
+    made.rename(watching.output / "GC-401/issued")
+    watching.wait(lambda: "preliminary issue of revision A" in watching.record("GC-401"), "the new record")
+    assert watching.interrupt() == 0
