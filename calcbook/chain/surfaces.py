@@ -100,6 +100,20 @@ class Shape:
 BUNDLE_KEYS = ("tubes", "passes", "plugged", "effective length")
 
 
+def stated_surface(scope: Scope, shape: Shape, term: Term, default: int) -> int | None:
+    """The index of the surface that a term acts on: the one it names, else the ``default``; None after a fault."""
+    name = term.texts.get("on", "")
+    if name:
+        return shape.surface_named(scope, name, term.place_of("on"))
+    scope.assume(
+        f"{term.name}/on",
+        f"{term.name} acts on the surface {shape.surfaces[default].name}.",
+        "the surface next to it; no other is stated",
+        term.name,
+    )
+    return default
+
+
 def lay_out_shape(scope: Scope, geometry: Geometry, walls: tuple[Term, ...]) -> Shape | None:
     """Diameters, areas and surfaces; None after a fault that leaves nothing to go on with."""
     values = {

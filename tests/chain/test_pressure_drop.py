@@ -473,7 +473,7 @@ def test_u_is_the_same_bit_for_bit_without_it(name: str, monkeypatch: pytest.Mon
     calculation = replace(calculation, acceptance=asked)
     given = solve_calculation(calculation, Library(CALCS / "cards"))
     with monkeypatch.context() as patched:
-        patched.setattr("calcbook.chain.build.lay_out_pressure_drop", lambda film: (None, ""))
+        patched.setattr("calcbook.chain.groups.lay_out_pressure_drop", lambda film: (None, ""))
         plain = solve_calculation(calculation, Library(CALCS / "cards"))
     for case, other in zip(given.cases, plain.cases, strict=True):
         kept = {key: result.value for key, result in case.results.items() if not key.startswith("dp ")}
