@@ -1,4 +1,4 @@
-"""Other methods in place of a film's own: the circuit closed once more with each of them, in service."""
+"""Other methods in place of a film's own: the circuit closed once more with each of them."""
 
 from __future__ import annotations
 
@@ -28,17 +28,19 @@ class Alternative(NamedTuple):
     own: Solution
 
 
-def alternatives(chain: Chain, branch: Branch, others: Sequence[Alternative]) -> list[Solution]:
-    """The solution of a case with each candidate in place of a film's own.
+def alternatives(
+    chain: Chain, branch: Branch, others: Sequence[Alternative], condition: str = SERVICE
+) -> list[Solution]:
+    """The solution of a case with each candidate in place of a film's own, in one condition.
 
     Those that follow the temperature of the surface are closed together, a sample each, so that all they
     share is evaluated once. A sample's answer does not depend on its neighbours.
     """
     follow = [needs_temperatures(chain, branch, other.candidate) for other in others]
     together = [other for other, follows in zip(others, follow, strict=True) if follows]
-    solved = iter(_together(chain, branch, together)) if together else iter(())
+    solved = iter(_together(chain, branch, together, condition)) if together else iter(())
     return [
-        next(solved) if follows else solve(chain, other.inputs, SERVICE, {branch.name: other.candidate})
+        next(solved) if follows else solve(chain, other.inputs, condition, {branch.name: other.candidate})
         for other, follows in zip(others, follow, strict=True)
     ]
 
@@ -52,7 +54,7 @@ def _group_of(chain: Chain, branch: Branch) -> Group:
     return next(group for group in (chain.inner, chain.outer) if branch in group.branches)
 
 
-def _together(chain: Chain, branch: Branch, others: Sequence[Alternative]) -> list[Solution]:
+def _together(chain: Chain, branch: Branch, others: Sequence[Alternative], condition: str) -> list[Solution]:
     """One call for all: a film whose candidates are the others, each chosen for a sample of its own.
 
     Where the cases closed with as many moving elements, the circuits are begun from there.
@@ -69,7 +71,7 @@ def _together(chain: Chain, branch: Branch, others: Sequence[Alternative]) -> li
     solution = solve(
         changed_chain,
         _rows([other.inputs for other in others]),
-        SERVICE,
+        condition,
         choices={branch.name: np.array([places[id(other.candidate)] for other in others])},
         start=np.column_stack(starts) if is_near else None,
     )

@@ -15,7 +15,7 @@ from calcbook.chain.gaps import gaps, with_method
 from calcbook.chain.measured import measured
 from calcbook.chain.outcome import CaseOutcome, CrossRow
 from calcbook.chain.solve import Solution, chosen, solve
-from calcbook.chain.types import SERVICE, Branch, Candidate, Chain
+from calcbook.chain.types import CLEAN, SERVICE, Branch, Candidate, Chain, ChainCheck
 from calcbook.formulas import Dimension
 from calcbook.library.operations import run
 
@@ -26,8 +26,9 @@ def cross_check(
     """By case a row for every other method of every film and gap in service: what it gives, or why it is left out.
 
     ``dimensions`` are those of every step of the chain, for the words of limits. The methods of a film are tried
-    in all cases at once.
+    in all cases at once, and on the clean unit too where a criterion takes a result of it.
     """
+    conditions = _conditions(chain)
     crossed = [_CrossedCase(chain, case, dimensions) for case in cases]
     rows: dict[str, list[CrossRow]] = {case.name: [] for case in cases}
     for branch in (*chain.inner.branches, *chain.outer.branches):
@@ -35,15 +36,41 @@ def cross_check(
             continue
         others = [cross.others(branch) for cross in crossed]
         tried = [
-            Alternative(other, cross.inputs, cross.service)
+            (cross, other)
             for cross, group in zip(crossed, others, strict=True)
             for other, reason in group
             if not reason
         ]
-        solutions = iter(alternatives(chain, branch, tried))
+        solutions = iter(_in_each(chain, branch, tried, conditions))
         for cross, group in zip(crossed, others, strict=True):
             rows[cross.case.name] += cross.of_film(branch, group, solutions)
-    return {cross.case.name: (*rows[cross.case.name], *cross.of_gaps()) for cross in crossed}
+    return {cross.case.name: (*rows[cross.case.name], *cross.of_gaps(conditions)) for cross in crossed}
+
+
+def _conditions(chain: Chain) -> tuple[str, ...]:
+    """The conditions in which other methods are tried: service, and clean where a criterion asks for it."""
+    asked = {
+        condition
+        for criterion in chain.calculation.acceptance
+        if (judged := measured(chain, criterion.result)) is not None
+        for condition, _ in judged.parts.values()
+    }
+    return (SERVICE, CLEAN) if CLEAN in asked else (SERVICE,)
+
+
+def _in_each(
+    chain: Chain,
+    branch: Branch,
+    tried: Sequence[tuple[_CrossedCase, Candidate]],
+    conditions: tuple[str, ...],
+) -> list[dict[str, Solution]]:
+    """The solutions of cases with another method of a film in its place, by condition."""
+    found: list[dict[str, Solution]] = [{} for _ in tried]
+    for condition in conditions:
+        others = [Alternative(other, cross.inputs, cross.case.solutions[condition]) for cross, other in tried]
+        for solutions, solution in zip(found, alternatives(chain, branch, others, condition), strict=True):
+            solutions[condition] = solution
+    return found
 
 
 @dataclass(frozen=True)
@@ -72,17 +99,20 @@ class _CrossedCase:
         return [(other, self._left_out(branch, other)) for other in others]
 
     def of_film(
-        self, branch: Branch, others: Sequence[tuple[Candidate, str]], solutions: Iterator[Solution]
+        self,
+        branch: Branch,
+        others: Sequence[tuple[Candidate, str]],
+        solutions: Iterator[dict[str, Solution]],
     ) -> list[CrossRow]:
         """A row for each other method of a film; ``solutions`` yields that of each which nothing leaves out."""
         used = chosen(branch, self.service)
         rows = [
-            self._row(branch, used, other, reason, None if reason else next(solutions))
+            self._row(branch, used, other, reason, {} if reason else next(solutions))
             for other, reason in others
         ]
         return [*rows, *_unusable(branch)]
 
-    def of_gaps(self) -> list[CrossRow]:
+    def of_gaps(self, conditions: tuple[str, ...]) -> list[CrossRow]:
         """A row for each other way across each gap."""
         rows = []
         for layer, gap in gaps(self.chain):
@@ -93,23 +123,31 @@ class _CrossedCase:
                 for other in others.values():
                     reason = self._out_of_range(other, self._at_solution(other))
                     changed = with_method(self.chain, layer, way, other)
-                    solution = None if reason else solve(changed, self.inputs, SERVICE)
-                    rows.append(self._row(way, used, other, reason, solution))
+                    tried = () if reason else conditions
+                    solutions = {condition: solve(changed, self.inputs, condition) for condition in tried}
+                    rows.append(self._row(way, used, other, reason, solutions))
                 rows += _unusable(way)
         return rows
 
     def _row(
-        self, branch: Branch, used: Candidate, other: Candidate, reason: str, solution: Solution | None
+        self,
+        branch: Branch,
+        used: Candidate,
+        other: Candidate,
+        reason: str,
+        solutions: Mapping[str, Solution],
     ) -> CrossRow:
-        """The row of one method: the solution with it in its place, or the reason why there is none."""
+        """The row of one method: the solutions with it in its place, or the reason why there are none."""
         coefficient = overall = difference = math.nan
+        solution, clean = solutions.get(SERVICE), solutions.get(CLEAN)
         if solution is not None:
-            closes = bool(np.all(solution.converged))
-            reason = self._out_of_range(other, solution) if closes else "does not close here"
+            reason = self._no_answer(other, solution)
             overall = solution.number(self.chain.results["U"])
             difference = overall / self.case.results["U_service"].value - 1.0
             if other.coefficient in solution.values:
                 coefficient = solution.number(other.coefficient)
+        if clean is not None and self._no_answer(other, clean):
+            clean = None
         method = other.method
         return CrossRow(
             branch.name,
@@ -121,18 +159,27 @@ class _CrossedCase:
             overall,
             difference,
             reason,
-            () if solution is None or reason else self._turned(solution),
+            () if solution is None or reason else self._turned(solution, clean),
+            () if solution is None or reason else self._cautions(other, solution),
+            math.nan if clean is None or reason else clean.number(self.chain.results["U"]),
         )
 
-    def _turned(self, solution: Solution) -> tuple[str, ...]:
-        """The ids of the criteria over results in service that have another verdict with a film's other method."""
+    def _no_answer(self, other: Candidate, solution: Solution) -> str:
+        """Why the circuit closed with a method gives nothing to compare; empty where it does."""
+        return (
+            self._out_of_range(other, solution) if bool(np.all(solution.converged)) else "does not close here"
+        )
+
+    def _turned(self, service: Solution, clean: Solution | None) -> tuple[str, ...]:
+        """The ids of the criteria that have another verdict with a film's other method."""
+        solved = {SERVICE: service.values} | ({} if clean is None else {CLEAN: clean.values})
         found = []
         for item in self.case.criteria:
             criterion = self.chain.calculation.criterion(item.id)
             judged = measured(self.chain, criterion.result)
-            if judged is None or {condition for condition, _ in judged.parts.values()} != {SERVICE}:
+            if judged is None or not {condition for condition, _ in judged.parts.values()} <= set(solved):
                 continue
-            margin = criterion_margin(criterion, float(judged.value({SERVICE: solution.values})), item.limit)
+            margin = criterion_margin(criterion, float(judged.value(solved)), item.limit)
             if bool(is_met(criterion, margin)) != item.is_met_as_stated:
                 found.append(item.id)
         return tuple(found)
@@ -155,9 +202,20 @@ class _CrossedCase:
             if limit.limit.level not in ("stop", "range"):
                 continue
             if state_of_check(limit, solution) in ("outside", "not evaluable"):
-                check = evaluate_check(limit, solution, "", self.dimensions)
-                return f"outside its range: {check.figure}, limit {check.limit}"
+                return f"outside its range: {self._words(limit, solution)}"
         return ""
+
+    def _cautions(self, other: Candidate, solution: Solution) -> tuple[str, ...]:
+        """The cautions of a method that are outside, in words."""
+        return tuple(
+            self._words(limit, solution)
+            for limit in other.checks
+            if limit.limit.level == "caution" and state_of_check(limit, solution) == "outside"
+        )
+
+    def _words(self, limit: ChainCheck, solution: Solution) -> str:
+        check = evaluate_check(limit, solution, "", self.dimensions)
+        return f"{check.figure}, limit {check.limit}"
 
 
 def _unusable(branch: Branch) -> list[CrossRow]:

@@ -144,7 +144,8 @@ class PropertyRow(NamedTuple):
 class CrossRow(NamedTuple):
     """Another method of the situation on the same film: what it gives, or why it was left out.
 
-    ``turned`` are the ids of the case's criteria over results in service that have another verdict with it.
+    ``turned`` are the ids of the case's criteria that have another verdict with it, ``cautions`` what it is cautioned
+    for here. ``overall_clean`` is known where a criterion takes a result of the clean unit.
     """
 
     term: str
@@ -157,6 +158,8 @@ class CrossRow(NamedTuple):
     difference: float
     left_out: str = ""
     turned: tuple[str, ...] = ()
+    cautions: tuple[str, ...] = ()
+    overall_clean: float = math.nan
 
 
 class ClosureRow(NamedTuple):

@@ -67,6 +67,38 @@ def test_the_governing_case_is_crossed_as_a_base_case_of_its_figures_is(tmp_path
         assert own.overall == pytest.approx(other.overall, rel=1e-10, nan_ok=True)
 
 
+@pytest.mark.parametrize(
+    ("method", "is_met"),
+    [("jaster-kosky-1976", False), ("shah-2016-condensation", False), ("shah-1979-condensation", True)],
+)
+def test_a_criterion_of_the_clean_unit_is_crossed_as_a_file_that_names_the_method(
+    method: str, is_met: bool, tmp_path: Path
+) -> None:
+    """The heat flux of the clean kettle bounds it from above: the larger film coefficients turn its verdict."""
+    row = next(row for row in solve_file(CALCS / "kr-801.yaml").cross[""] if row.method == method)
+    text = (CALCS / "kr-801.yaml").read_text(encoding="utf-8")
+    named = text.replace("method: chato-1962", f"method: {method}")
+    named = re.sub(r"(?ms)^accept:.*?(?=^report:)", "", named)
+    shutil.copy(CALCS / "book.yaml", tmp_path)
+    (tmp_path / "kr-801.yaml").write_text(named, encoding="utf-8")
+    alone = solve_file(tmp_path / "kr-801.yaml").base
+    assert row.overall_clean == pytest.approx(alone.results["U_clean"].value, rel=1e-10)
+    flux = next(item for item in alone.criteria if item.that.startswith("heat_flux_clean"))
+    assert flux.met is is_met
+    assert (flux.id in row.turned) is not is_met
+
+
+def test_figures_of_other_methods_show_on_which_side_of_a_limit_they_lie() -> None:
+    """With Dittus-Boelter SC-701 has 2302.7 against 2300 W/(m^2 K): three digits would print the limit itself."""
+    solved = solve_file(CALCS / "sc-701.yaml")
+    row = next(row for row in solved.cross[""] if row.method == "dittus-boelter-mcadams")
+    assert 2300.0 < row.overall < 2305.0 and not row.turned
+    line = next(line for line in record_text(solved).splitlines() if "(dittus-boelter-mcadams)" in line)
+    assert "| 2303 |" in line
+    # The handbook holds it for small differences between surface and bulk: the row says that this is exceeded.
+    assert "limit ≤ 6 K" in line
+
+
 def test_a_verdict_that_another_method_turns_is_among_the_cautions() -> None:
     solved = solve_file(CALCS / "hr-821.yaml")
     turned = {(case, row.method) for case, rows in solved.cross.items() for row in rows if row.turned}

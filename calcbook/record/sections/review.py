@@ -6,7 +6,7 @@ import math
 from collections.abc import Callable, Sequence
 
 from calcbook.chain.analysis import is_found_later, keeps_what_is_found_later
-from calcbook.chain.outcome import CriterionResult, Solved
+from calcbook.chain.outcome import CriterionResult, CrossRow, Solved
 from calcbook.chain.outside import stands_in_the_open
 from calcbook.chain.types import CONDITIONS, SERVICE, Chain
 from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Quote, Table
@@ -394,15 +394,22 @@ def _outside(page: Page) -> list[str]:
 
 
 def _undecided(page: Page) -> list[str]:
-    """Methods within their range with which a criterion in service has another verdict."""
+    """Methods within their range with which a criterion has another verdict."""
     return [
         f"{item.id} ({item.that}) depends on the method{f' in case {case.name}' if case.name else ''}: with"
-        f" {row.method} on {row.term}, within its range here, it is {'not met' if item.is_met_as_stated else 'met'}."
+        f" {row.method} on {row.term}, within its range here{_but_cautioned(row)}, it is"
+        f" {'not met' if item.is_met_as_stated else 'met'}."
         for case in page.solved.cases
         for item in case.criteria
         for row in page.solved.cross.get(case.name, ())
         if item.id in row.turned
     ]
+
+
+def _but_cautioned(row: CrossRow) -> str:
+    """That a method's own cautions speak against its verdict."""
+    count = len(row.cautions)
+    return f" but for {counted(count, 'caution', 'cautions')}" if count else ""
 
 
 def _negative(page: Page) -> list[str]:

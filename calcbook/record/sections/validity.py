@@ -2,14 +2,24 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 
 from calcbook.chain.outcome import CheckResult, ClosureRow, CrossRow
 from calcbook.chain.types import CONDITIONS
 from calcbook.quantities import in_unit
 from calcbook.record.blocks import Block, Heading, Paragraph, Table
-from calcbook.record.numbers import CONCLUSION_DIGITS, NOT_USED, number, percent, report_unit, unit_text
+from calcbook.record.numbers import (
+    CONCLUSION_DIGITS,
+    NOT_USED,
+    apart,
+    number,
+    percent,
+    report_unit,
+    unit_text,
+)
 from calcbook.record.page import HOUSE_METHOD, Page, case_name, counted
+from calcbook.record.sections.uncertainty import result_of
 
 PUBLISHED = "published"
 RESIDUAL_DIGITS = 2
@@ -164,6 +174,7 @@ def _crossed(case: str, rows: Sequence[CrossRow], page: Page) -> list[Block]:
     out = tuple(row for row in rows if row.left_out and (row.term, row.method) not in listed)
     again = sum(bool(row.left_out) for row in rows) - len(out)
     if used:
+        has_clean = any(math.isfinite(row.overall_clean) for row in used)
         unit = unit_text(report_unit(page.base.results["U_service"].kind, page.calculation.report))
         blocks.append(
             Table(
@@ -173,10 +184,12 @@ def _crossed(case: str, rows: Sequence[CrossRow], page: Page) -> list[Block]:
                     f"h in service, {unit}",
                     f"U in service, {unit}",
                     "Difference of U",
+                    *([f"U clean, {unit}"] if has_clean else []),
                     "Family",
                     "Independent of the method used",
+                    "Its cautions that are outside",
                 ),
-                tuple(_cross_row(row, page) for row in used),
+                tuple(_cross_row(row, case, has_clean, page) for row in used),
             )
         )
     elif rows:
@@ -194,21 +207,34 @@ def _crossed(case: str, rows: Sequence[CrossRow], page: Page) -> list[Block]:
     return blocks
 
 
-def _cross_row(row: CrossRow, page: Page) -> tuple[str, ...]:
-    kind = page.base.results["U_service"].kind
-    unit = report_unit(kind, page.calculation.report)
-    coefficient, overall = (
-        number(in_unit(value, unit), CONCLUSION_DIGITS) for value in (row.coefficient, row.overall)
-    )
+def _cross_row(row: CrossRow, case: str, has_clean: bool, page: Page) -> tuple[str, ...]:
+    unit = report_unit(page.base.results["U_service"].kind, page.calculation.report)
     return (
         row.term,
         f"{row.title} ({row.method})",
-        coefficient,
-        overall,
+        number(in_unit(row.coefficient, unit), CONCLUSION_DIGITS),
+        _beside_limits(row.overall, "U_service", case, page),
         percent(row.difference),
+        *([_beside_limits(row.overall_clean, "U_clean", case, page)] if has_clean else []),
         row.family,
         "no, same family" if row.same_family else "yes, another family",
+        "; ".join(row.cautions) or "none",
     )
+
+
+def _beside_limits(value: float, name: str, case: str, page: Page) -> str:
+    """A figure that criteria of its case may judge, with so many digits that their verdicts can be seen."""
+    kind = page.base.results[name].kind
+    unit = report_unit(kind, page.calculation.report)
+    limits = [
+        item.limit
+        for one in page.solved.cases
+        if one.name == case
+        for item in one.criteria
+        if result_of(item) == name
+    ]
+    texts = [apart(value, limit, unit, kind.scale == "point", CONCLUSION_DIGITS)[0] for limit in limits]
+    return max(texts, key=len, default=number(in_unit(value, unit), CONCLUSION_DIGITS))
 
 
 # --- closure ----------------------------------------------------------------------------------------
