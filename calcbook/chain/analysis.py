@@ -9,6 +9,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from calcbook.calcfile.calculation import Criterion, unknown_symbol
+from calcbook.chain.along import OF_PARTS, U_SPREAD, u_along
 from calcbook.chain.checks import apply_acceptances, evaluate_check
 from calcbook.chain.completing import completed
 from calcbook.chain.criteria import criterion_margin, is_met
@@ -78,8 +79,8 @@ LATER = {
     "allowance_": "survey",
     "fitted ": "survey",
     **{f"U_{condition}{MEAN_OF_PLACES}": "evaluate at" for condition in CONDITIONS},
+    **dict.fromkeys(OF_PARTS, "parts"),
 }
-PLACES_SPREAD = 0.2
 # Slopes below this part of U are the rounding of sums that cancel.
 NOISE = 1e-13
 
@@ -234,7 +235,7 @@ class _Analysis:
         ends = closed_ends(end_states(self.chain, inputs, solutions))
         results = self._results(solutions, inputs, ends)
         self.results = self.results or results
-        checks = (*self._checks(name, solutions), *end_checks(ends, name))
+        checks = (*self._checks(name, solutions), *end_checks(ends, name), *self._along(ends, name))
         for check in checks:
             if check.level == "stop" and check.state == "outside":
                 self._report_stop(check)
@@ -416,6 +417,11 @@ class _Analysis:
             )
         return tuple(found)
 
+    def _along(self, ends: tuple[EndState, ...], case: str) -> list[CheckResult]:
+        """How much U differs along the unit, unless the file asks for parts, which tell it closer."""
+        duty = self.chain.calculation.duty
+        return u_along(ends, case) if duty is not None and duty.parts == 1 else []
+
     def _is_asked(self, name: str) -> bool:
         """Whether the file asks for a result that is found later."""
         calculation = self.chain.calculation
@@ -425,6 +431,7 @@ class _Analysis:
             "cleaning": calculation.cleaning is not None,
             "survey": calculation.survey is not None,
             "evaluate at": bool(calculation.places),
+            "parts": calculation.duty is not None and calculation.duty.parts > 1,
         }
         return asked[key]
 
@@ -675,13 +682,13 @@ def _with_mean(cases: list[CaseOutcome], places: tuple[str, ...]) -> CaseOutcome
             f"arithmetic mean of U {condition} over {', '.join(at)}",
         )
         spread = (max(values) - min(values)) / mean
-        if spread > PLACES_SPREAD:
+        if spread > U_SPREAD:
             items.append(
                 OpenItem(
                     f"places / {condition}",
                     "check",
                     f"U {condition} differs by {100.0 * spread:.0f} % over"
-                    f" the places {', '.join(at)}, more than {100.0 * PLACES_SPREAD:.0f} %: one U does not"
+                    f" the places {', '.join(at)}, more than {100.0 * U_SPREAD:.0f} %: one U does not"
                     " stand for the whole unit.",
                 )
             )

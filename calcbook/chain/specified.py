@@ -11,7 +11,7 @@ from dataclasses import dataclass
 from calcbook.calcfile.calculation import FoulingSpecified, Term
 from calcbook.calcfile.specified import ROUNDING
 from calcbook.chain.scope import Scope
-from calcbook.chain.types import CLEAN, SERVICE, ChainCheck, OpenFigure
+from calcbook.chain.types import CLEAN, SERVICE, SERVICE_FLAG, ChainCheck, OpenFigure
 from calcbook.formulas import parse_expression
 from calcbook.library import vocabulary
 from calcbook.library.cards import practice_limit
@@ -21,7 +21,11 @@ CLEAN_U, WHOLE, FOUND = f"{OWNER}/U clean", f"{OWNER}/R whole", f"{OWNER}/R foun
 # Where the clean U, W/(m² K), and the resistance, m² K/W, are looked for from.
 FIRST_U, FIRST_R = 500.0, 1e-4
 # What the resistance must be, from what it is and the U in service with it.
-RELATIONS = {"cleanliness": "R_f + 1/(C_f*U_c) - 1/U", "excess surface": "R_f + (1 + S_f)/U_c - 1/U"}
+# Clean nothing is missing, so that the resistance stays.
+RELATIONS = {
+    "cleanliness": "R_f + s*(1/(C_f*U_c) - 1/U)",
+    "excess surface": "R_f + s*((1 + S_f)/U_c - 1/U)",
+}
 SYMBOLS = {"cleanliness": "C_f", "excess surface": "S_f"}
 LIMITS = {"cleanliness": "0 < C_f < 1", "excess surface": "S_f > 0"}
 
@@ -54,11 +58,12 @@ class SpecifiedFouling:
             "U_c": self._open(CLEAN_U, "overall coefficient"),
             SYMBOLS[self.specified.kind]: self._figure(),
             "U": overall,
+            "s": self.scope.constant(SERVICE_FLAG, 1.0),
         }
         self.scope.relation_step(
             FOUND,
             "R_f",
-            f"fouling of the whole unit for {self.specified.kind}",
+            f"fouling of the whole unit for {self.specified.kind} (s = 1 in service, 0 clean)",
             OWNER,
             parse_expression(RELATIONS[self.specified.kind]),
             figures,

@@ -3,14 +3,18 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from dataclasses import replace
 
 import numpy as np
 
-from calcbook.chain.outcome import Solved
+from calcbook.chain.along import OF_PARTS, U_SPREAD
+from calcbook.chain.outcome import Result, Solved
 from calcbook.chain.rating_outcome import PartRow, Parts
 from calcbook.chain.solve import Solution, solve
-from calcbook.chain.types import CONDITIONS, SERVICE
+from calcbook.chain.types import CLEAN, CONDITIONS, SERVICE, OpenItem
 from calcbook.chain.variants import with_figures
+from calcbook.formulas import number_text
+from calcbook.library import vocabulary
 
 Array = np.ndarray
 
@@ -32,6 +36,45 @@ def parts(solved: Solved) -> Parts | None:
     chain, given = with_figures(solved.chain, inputs, figures)
     solutions = {condition: solve(chain, given, condition) for condition in CONDITIONS}
     return _laid_out(solved, solutions, ends, duty.parts)
+
+
+def with_parts(solved: Solved, along: Parts) -> Solved:
+    """A solved calculation with the summed areas among its results, and an open item where one mean state misleads.
+
+    It does where U differs much over the parts, or where the parts carry the duty and the mean state does not, or
+    the other way round.
+    """
+    base = solved.base
+    installed, single = base.results["area_installed"].value, base.results["area_margin"].value
+    margin = installed / along.area[SERVICE] - 1.0
+    area, ratio = vocabulary()["area"], vocabulary()["ratio"]
+    summed = "summed over the parts of the duty"
+    values = (
+        (along.area[SERVICE], area, f"area that the duty needs in service, {summed}"),
+        (along.area[CLEAN], area, f"area that the duty needs clean, {summed}"),
+        (margin, ratio, f"margin of area over the duty in service, its area {summed}"),
+    )
+    results = {
+        name: Result(name, value, kind, title)
+        for name, (value, kind, title) in zip(OF_PARTS, values, strict=True)
+    }
+    items = list(base.open_items)
+    if along.spread > U_SPREAD or (margin < 0.0) != (single < 0.0):
+        items.append(OpenItem("duty / parts", "check", _misled(along, margin, single)))
+    base = replace(base, results={**base.results, **results}, open_items=tuple(items))
+    return replace(solved, cases=(base, *solved.cases[1:]))
+
+
+def _misled(along: Parts, margin: float, single: float) -> str:
+    return (
+        f"U in service differs by {_percent(along.spread)} over the parts of the duty. The margin of area is"
+        f" {_percent(margin)} with the area summed over them, and {_percent(single)} from one mean state,"
+        f" which criteria, ledger and largest allowances take."
+    )
+
+
+def _percent(ratio: float) -> str:
+    return f"{number_text(100.0 * ratio, 3)} %"
 
 
 def _ends(solved: Solved, name: str, count: int) -> tuple[Array, Array]:

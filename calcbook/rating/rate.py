@@ -8,7 +8,7 @@ from calcbook.chain.outcome import Solved
 from calcbook.chain.rating_outcome import Rating
 from calcbook.rating.day_one import day_one
 from calcbook.rating.ledger import ledger
-from calcbook.rating.parts import parts
+from calcbook.rating.parts import parts, with_parts
 
 
 def rated(solved: Solved) -> Solved:
@@ -16,10 +16,12 @@ def rated(solved: Solved) -> Solved:
     if "duty" not in solved.chain.results:
         return solved
     rows = ledger(solved)
+    along = parts(solved)
     rating = Rating(
         rows,
         sum(row.area for row in rows),
-        parts(solved),
+        along,
         day_one(solved),
     )
-    return replace(solved, rating=rating)
+    rated_so = replace(solved, rating=rating)
+    return with_parts(rated_so, along) if along is not None else rated_so

@@ -53,6 +53,7 @@ duty:
 report: {{U on: outside}}
 """
 RATED = Path(__file__).resolve().parent.parent / "cases" / "ok" / "rated-cooler.yaml"
+ALONG = "duty / ends / overall coefficient"
 # W.M. Kreith, R.M. Manglik, M.S. Bohn, Principles of Heat Transfer, 7th ed., example 8.1: inputs read in a public
 # companion; U is 568 W/(m² K), so both films together have that coefficient.
 KREITH = {
@@ -349,6 +350,76 @@ def test_parts_of_constant_properties_add_up_to_one(tmp_path: Path) -> None:
     assert parts.rows[0].cold[1] == pytest.approx(figure(answer, "T_cold_outlet"), rel=1e-12)
 
 
+def conducting(tmp_path: Path, parts: int):
+    """A hot gas in a long tube against a film without resistance: h goes with its conductivity, linear in T."""
+    constants = (
+        "constants: {density: 1000 kg/m^3, viscosity: 0.001 Pa s, conductivity: 0.6 W/(m K),"
+        ' heat capacity: "4000 J/(kg K)"}'
+    )
+    table = (
+        "table: {T: [10 degC, 110 degC], density: [1000 kg/m^3, 1000 kg/m^3], viscosity: [0.001 Pa s, 0.001 Pa s],"
+        " conductivity: [0.05 W/(m K), 0.55 W/(m K)], heat capacity: [4000 J/(kg K), 4000 J/(kg K)]}"
+    )
+    stated = {
+        "length": "60000 m",
+        "hot_flow": "0.01 kg/s",
+        "cold_flow": "0.02 kg/s",
+        "film": "1000000 W/(m^2 K)",
+    }
+    ends = {"T_hi": "90 degC", "T_ho": "50 degC", "T_ci": "20 degC", "T_co": "40 degC"}
+    capacities = {"hot_cp": "4000 J/(kg K)", "cold_cp": "4000 J/(kg K)", "cold_outlet": ", outlet: T_co"}
+    text = FILE.format(**{**KREITH, **stated, **ends, **capacities, "shells": f"  parts: {parts}\n"})
+    text = text.replace(constants, table, 1).replace("flow: m_h, phase: liquid", "flow: m_h, phase: gas")
+    text = text.replace("coefficient: h, on: outside, stream: hot", "stream: hot, situation: inside-tube")
+    path = tmp_path / "rt-1.yaml"
+    path.write_text(text, encoding="utf-8")
+    return solve_file(path)
+
+
+def test_parts_sum_up_to_the_area_of_a_u_that_is_linear_along_the_unit(tmp_path: Path) -> None:
+    """A.P. Colburn, Industrial and Engineering Chemistry 25 (1933) 873-877 (from memory): for U linear in temperature
+    A = Q·ln(U_1·ΔT_2/(U_2·ΔT_1))/(U_1·ΔT_2 − U_2·ΔT_1). Nu lies between 3.66 and (3.66^3 + 0.7^3)^(1/3), the ends
+    of the card's law of a long tube; film, wall and deposit outside add 7e-5 to the resistance."""
+    u_hot, u_cold = (conductivity / 0.020002 for conductivity in (0.45, 0.25))
+    area = 1600.0 * np.log(u_hot * 30.0 / (u_cold * 50.0)) / (u_hot * 30.0 - u_cold * 50.0)
+    largest, least = area / 3.66, area / (3.66**3 + 0.7**3) ** (1.0 / 3.0)
+    found = {parts: conducting(tmp_path, parts) for parts in (20, 40)}
+    summed = {parts: answer.rating.parts.area["service"] for parts, answer in found.items()}
+    # The rule of midpoints: with twice the parts a quarter of its error is left.
+    limit = summed[40] + (summed[40] - summed[20]) / 3.0
+    assert least < limit < largest * (1.0 + 7e-5)
+    answer = found[40]
+    assert figure(answer, "area_service") < 0.96 * summed[40]
+    assert figure(answer, "area_service of parts") == summed[40]
+    margin = figure(answer, "area_installed") / summed[40] - 1.0
+    assert figure(answer, "area_margin of parts") == pytest.approx(margin, rel=1e-12)
+    assert "duty / parts" in {item.id for item in answer.open_items}
+
+
+def test_a_u_that_differs_along_a_unit_in_one_part_is_a_caution(tmp_path: Path) -> None:
+    answer = conducting(tmp_path, 1)
+    found = {check.condition: check for check in answer.base.checks if check.id == ALONG}
+    # The conductivity is 0.45 W/(m K) at the hot inlet and 0.25 at the hot outlet.
+    assert found["service"].value == pytest.approx(0.45 / 0.25 - 1.0, abs=0.01)
+    assert (found["service"].level, found["service"].state) == ("caution", "outside")
+    even = solved(tmp_path, length="900 m")
+    assert {check.state for check in even.base.checks if check.id == ALONG} == {"within"}
+
+
+def test_a_criterion_takes_the_area_of_the_parts(tmp_path: Path) -> None:
+    text = RATED.read_text(encoding="utf-8")
+    assert "\n  parts: " in text
+    text += "\nacceptance:\n  - {that: area_margin of parts >= 0, source: s}\n"
+    path = tmp_path / "rated.yaml"
+    path.write_text(text, encoding="utf-8")
+    answer = solve_file(path)
+    (item,) = answer.base.criteria
+    assert item.value == figure(answer, "area_margin of parts") != figure(answer, "area_margin")
+    path.write_text(re.sub(r"(?m)^  parts: .*\n", "", text), encoding="utf-8")
+    with pytest.raises(Faults, match="is found only where the file has `parts:`"):
+        solve_file(path)
+
+
 def test_slopes_pass_through_open_outlets(tmp_path: Path) -> None:
     """Derivatives of heat and U by every figure against central differences of the whole solution."""
     answer = solved(
@@ -393,6 +464,9 @@ def test_fouling_specified_for_the_whole_unit(tmp_path: Path, way: str, value: s
     )
     answer = solve_file(path)
     assert figure(answer, "cleanliness") == pytest.approx(ratio, rel=1e-12)
+    # The resistance that is missing is told alike in both conditions, though only the service has it.
+    clean, service = (answer.base.solutions[name].number("fouling/R found") for name in ("clean", "service"))
+    assert clean == pytest.approx(service, rel=1e-12)
 
 
 def test_a_method_factor_has_its_own_line_in_the_ledger() -> None:
