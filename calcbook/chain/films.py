@@ -279,6 +279,7 @@ class FilmScope:
                 "no non-condensable gas is stated",
                 self.owner,
             )
+            checks.append(self._no_vacuum())
         if self.situation.flow == "forced":
             return tuple(checks)
         speed = self.scope.value(stated, "vapour velocity", self.owner, "vapour velocity")
@@ -301,6 +302,18 @@ class FilmScope:
                 self.owner,
             )
         return tuple(checks)
+
+    def _no_vacuum(self) -> ChainCheck:
+        """A caution where a vapour that is taken as pure stands below the pressure of the air around it."""
+        assert self.situation is not None
+        outside = self.scope.site_pressure()
+        because = (
+            "air leaks into a vapour below the pressure of the site, a few per cent of it can halve the coefficient,"
+            " and `non-condensable:` of the stream is not stated"
+        )
+        limit = practice_limit("no vacuum", "p >= p_site", "caution", because, self.situation.where)
+        inputs = {"p": self.pressure(), "p_site": outside}
+        return ChainCheck(f"{self.owner} / vapour / no vacuum", self.owner, "vapour", limit, inputs)
 
     def _none_of(
         self, name: str, symbol: str, figure: str, level: str, kind: str, because: str

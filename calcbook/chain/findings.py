@@ -637,6 +637,24 @@ class _WallFacts:
     freezing: float
 
 
+def lacks_vapour_pressure(state: StreamState) -> bool:
+    """Whether boiling of a fluid at the wall cannot be checked."""
+    return state.fluid.text.kind not in ("name", "humid air")
+
+
+def lacks_freezing_point(state: StreamState, solution: Solution) -> bool:
+    """Whether freezing at the wall cannot be checked of a stream that is, or may be, a liquid."""
+    if state.phase == "gas" or state.fluid.text.kind == "humid air":
+        return False
+    pressure, fraction = (
+        solution.number(name) if name else None for name in (state.pressure, state.fraction)
+    )
+    try:
+        return state.fluid.state(pressure, fraction, state.phase).freezing_temperature() is None
+    except PropertyFault:
+        return False
+
+
 def _wall_facts(state: StreamState, phase: str, pressure: float, fraction: float) -> _WallFacts | None:
     """The facts of a bulk state; None where the fluid has no such state."""
     try:
@@ -807,6 +825,11 @@ def _looks_at(step: ChainStep, constant: str, solution: Solution) -> bool:
     return not np.array_equal(now, then)
 
 
+def _is_mean_over_length(candidate: Candidate) -> bool:
+    """Whether a method follows the length, and with it what came before a place."""
+    return any(need.quantity.name == "length" for need in candidate.method.needs)
+
+
 def _needed(candidate: Candidate) -> Iterator[str]:
     """The symbols that a method and the cards it uses take from outside."""
     yield from (need.symbol for card in candidate.cards for need in card.needs)
@@ -827,6 +850,14 @@ def assumptions_of(chain: Chain, solutions: Mapping[str, Solution]) -> tuple[Run
             for condition in reversed(CONDITIONS):
                 solution = solutions[condition]
                 candidate = chosen(branch, solution)
+                if chain.calculation.places and _is_mean_over_length(candidate):
+                    say(
+                        f"{branch.name}/mean over the length",
+                        f"{candidate.method.id} gives {branch.name} its mean over the whole length,"
+                        f" {', '.join(chain.calculation.places)} too: with the properties there, and no local coefficient.",
+                        "its card takes the length",
+                        branch.name,
+                    )
                 if branch.situation is not None and not branch.is_forced:
                     figures = _choice_figures(branch, solution)
                     say(
@@ -858,11 +889,18 @@ def assumptions_of(chain: Chain, solutions: Mapping[str, Solution]) -> tuple[Run
                 "no pressure is stated; checks against boiling at the wall cannot be evaluated",
                 owner,
             )
-        if state.fluid.text.kind not in ("name", "humid air"):
+        if lacks_vapour_pressure(state):
             say(
                 f"{owner}/vapour pressure",
                 f"Boiling at the wall is not checked for {state.name}.",
                 "its fluid has no vapour pressure",
+                owner,
+            )
+        if lacks_freezing_point(state, solutions[SERVICE]):
+            say(
+                f"{owner}/freezing point",
+                f"Freezing at the wall is not checked for {state.name}, nor its pour point, nor what separates from it.",
+                "its fluid has no freezing point",
                 owner,
             )
         if not state.phase:

@@ -162,6 +162,14 @@ def open_words(scope: Scope) -> None:
                 "revision",
                 f"The reason of revision {revision.revision} is to be written.",
             )
+    for acceptance in scope.calculation.accept:
+        if acceptance.date > scope.calculation.date:
+            scope.open(
+                f"acceptance of {acceptance.check} / date",
+                "revision",
+                f"The acceptance of {acceptance.check} is of {acceptance.date}, after the date of the calculation,"
+                f" {scope.calculation.date}.",
+            )
     for item in scope.calculation.assumptions:
         if not item.is_verified:
             scope.open(f"assumption {item.id}", "assumption", f"Assumption {item.id} is not verified.")

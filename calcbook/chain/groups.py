@@ -255,6 +255,8 @@ class Groups:
             return None
         if term.scales_with is not None:
             coefficient = self._scaled(term, coefficient)
+        else:
+            self._say_kept(term)
         if stated_on != surface:
             coefficient = scope.relation_step(
                 f"{term.name}/referred/h",
@@ -281,6 +283,26 @@ class Groups:
         return Branch(
             term.name, "stated", bulk, (candidate,), is_forced=True, stream=stream.name if stream else ""
         )
+
+    def _say_kept(self, term: Term) -> None:
+        """Say of every case that restates what the fluid of a stated film does that its coefficient stays."""
+        calculation = self.scope.calculation
+        stream = calculation.streams.get(term.texts.get("stream", ""))
+        state = [term.values.get("temperature")]
+        state += [stream.temperature, stream.pressure, stream.flow] if stream is not None else []
+        symbols = {value.symbol for value in state if value is not None}
+        coefficient = term.values.get("coefficient") or term.values.get("resistance")
+        for case, changes in calculation.cases.items():
+            moved = [symbol for symbol in changes if symbol in symbols]
+            if moved and coefficient is not None and coefficient.symbol not in changes:
+                where = case if case in calculation.places else f"in case {case}"
+                self.scope.assume(
+                    f"{term.name}/kept in {case}",
+                    f"{term.name} keeps its stated coefficient {where}, though {', '.join(moved)}"
+                    f" {'is' if len(moved) == 1 else 'are'} another there.",
+                    "no `scales with` says how it follows, and the case does not restate it",
+                    term.name,
+                )
 
     def _scaled(self, term: Term, coefficient: str) -> str:
         assert term.scales_with is not None

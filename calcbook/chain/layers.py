@@ -16,10 +16,11 @@ from calcbook.chain.surfaces import Shape, Wall, stated_surface
 from calcbook.chain.terms import check_with_values, refuse_withdrawn
 from calcbook.chain.types import ChainCheck, Element, Group, Layer
 from calcbook.faults import Faults
-from calcbook.formulas import parse_expression
+from calcbook.formulas import number_text, parse_expression
 from calcbook.library import Library, vocabulary
 from calcbook.library.cards import Limit, practice_limit
 from calcbook.library.conductivity import ConductivityTable
+from calcbook.quantities import in_unit
 
 FOULING_WAYS = ", or deposit: {thickness: …, conductivity: …}, or growth: {model: …, after: …}"
 WALL_CARDS = {"tube": "wall-cylinder", "plane": "wall-plane", "sphere": "wall-sphere"}
@@ -307,6 +308,13 @@ class Layers:
         card = self.library.material(table.id)
         low, high = table.limits
         if card.outside == "hold last" and low == high:
+            self.scope.assume(
+                f"{term.name}/one temperature",
+                f"The conductivity of {card.id} is known at {number_text(in_unit(low, 'degC', True), 5)} °C alone and taken at"
+                " every other temperature.",
+                "its card holds the last value",
+                term.name,
+            )
             return ()
         source = card.sources[0]
         checks = []

@@ -11,6 +11,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from calcbook.chain.checks import state_of_check
 from calcbook.chain.films import FilmScope
 from calcbook.chain.solve import Solution, numbers_in
 from calcbook.chain.types import (
@@ -22,13 +23,14 @@ from calcbook.chain.types import (
     ChainCheck,
     ChainStep,
     ChoiceRow,
+    Counting,
     Group,
     OpenItem,
     PressureDrop,
 )
 from calcbook.faults import Fault
-from calcbook.formulas import evaluate
-from calcbook.library.cards import Choice, Friction, Method
+from calcbook.formulas import evaluate, parse_expression
+from calcbook.library.cards import Choice, Friction, Method, practice_limit
 from calcbook.library.operations import run
 from calcbook.quantities import DIMENSIONLESS
 
@@ -36,6 +38,10 @@ Array = np.ndarray
 # What keeps a pressure drop from being given without being a mistake of the file: nobody asked for it.
 LACKING = frozenset(("need-missing", "property-missing", "flow-missing"))
 FACTOR = "friction factor"
+DROP, SHARE = "pressure drop", "share of the pressure"
+EXPANDS = (
+    "beyond a tenth of its pressure a gas expands on its way, and the law takes one density and one speed"
+)
 
 
 def asked_symbols(film: FilmScope) -> set[str]:
@@ -112,7 +118,28 @@ class _Layout:
         if total is None:
             return None
         steps = self.wide.ancestors([bound for row in rows for bound in row.inputs.values()])
-        return PressureDrop(self.factor if laws else "", tuple(laws), tuple(rows), steps, total)
+        return PressureDrop(
+            self.factor if laws else "", tuple(laws), tuple(rows), steps, self._with_expansion(total)
+        )
+
+    def _with_expansion(self, total: Candidate) -> Candidate:
+        """The sum with a caution where a gas loses so much of its pressure that one density does not hold."""
+        film, stream, situation = self.wide, self.film.stream, self.film.situation
+        assert situation is not None
+        if stream is None or not stream.pressure or stream.phase == "liquid" or situation.changes_phase:
+            return total
+        liquid = film.flag("fluid liquid")
+        limit = practice_limit(SHARE, "dp <= p/10", "caution", EXPANDS, film.term.place)
+        check = ChainCheck(
+            f"{film.owner} / {DROP} / {SHARE}",
+            film.owner,
+            DROP,
+            limit,
+            {"dp": total.coefficient, "p": stream.pressure},
+            (Counting(parse_expression("not liquid"), {"liquid": liquid}),),
+        )
+        steps = film.ancestors([*(step.id for step in total.steps), liquid])
+        return replace(total, steps=steps, checks=(*total.checks, check))
 
     @staticmethod
     def _row(choice: Choice, inputs: dict[str, str], laws: list[Candidate], law: Candidate) -> ChoiceRow:
@@ -265,8 +292,14 @@ def pressure_drop_checks(chain: Chain, solution: Solution) -> list[ChainCheck]:
     checks: list[ChainCheck] = []
     for _, _, drop in drops(chain):
         law = law_of(drop, solution)
-        checks += [*(law.checks if law is not None else ()), *drop.total.checks]
+        checks += law.checks if law is not None else ()
+        checks += [check for check in drop.total.checks if not _is_of_a_gas(check, solution)]
     return checks
+
+
+def _is_of_a_gas(check: ChainCheck, solution: Solution) -> bool:
+    """Whether a limit is for gases and the stream a liquid: it is not shown then."""
+    return check.card == DROP and state_of_check(check, solution) == "not counting"
 
 
 def pressure_items(chain: Chain, case: str, solutions: Mapping[str, Solution]) -> list[OpenItem]:

@@ -7,9 +7,10 @@ from collections.abc import Mapping
 from dataclasses import dataclass, replace
 
 from calcbook.calcfile.calculation import Given, Tolerance
+from calcbook.chain.checks import state_of_check
 from calcbook.chain.factors import factor_of, films_of
 from calcbook.chain.solve import Solution, chosen
-from calcbook.chain.types import Chain, Input
+from calcbook.chain.types import Branch, Candidate, Chain, Input
 from calcbook.chain.uncertainty_outcome import BudgetInput, LeftOut
 from calcbook.faults import Collector
 from calcbook.formulas import number_text
@@ -26,6 +27,7 @@ from calcbook.uncertainty.distributions import (
 
 # Of a value and its tolerance added up, relative.
 ROUNDING = 1e-12
+BEYOND = "; stated for the range of the card, and used outside it here"
 
 
 @dataclass(frozen=True, slots=True)
@@ -177,6 +179,9 @@ def method_figures(
             name = factor_of(method)
             item = chain.inputs[name]
             law = factor.distribution
+            beyond = BEYOND if _is_beyond_range(branch, candidate, solutions) else ""
+            if name in found and not beyond:
+                continue
             found[name] = Uncertain(
                 BudgetInput(
                     name,
@@ -186,13 +191,23 @@ def method_figures(
                     item.value,
                     law.standard,
                     law.words,
-                    factor.rule,
+                    f"{factor.rule}{beyond}",
                     math.inf,
                     True,
                 ),
                 law,
             )
     return tuple(found.values()), tuple(left_out.values())
+
+
+def _is_beyond_range(branch: Branch, candidate: Candidate, solutions: Mapping[str, Solution]) -> bool:
+    """Whether a method acts outside its range, accepted or not: what its card says of itself is not said of that."""
+    return any(
+        check.limit.level == "range" and state_of_check(check, solution) == "outside"
+        for solution in solutions.values()
+        if chosen(branch, solution) is candidate
+        for check in candidate.checks
+    )
 
 
 def has_floor(kind: QuantityKind) -> bool:

@@ -41,6 +41,7 @@ def title_block(page: Page) -> list[Block]:
         ("Revision", calculation.revision),
         ("State", page.life.state),
         ("Confirmation", _confirmation_words(page)),
+        ("Criteria", _criteria_words(page)),
         *((role.capitalize(), _signed(page, role)) for role in calculation.settings.roles),
         *((("Issue", page.life.issued),) if page.life.issued else ()),
         ("Digest", page.digest.whole),
@@ -72,6 +73,15 @@ def _confirmation_words(page: Page) -> str:
     if not items:
         return confirmation(page) + (", as it was issued" if confirmation(page) == PRELIMINARY else "")
     return f"{confirmation(page)}: {counted(items, 'open item', 'open items')}, listed in section 2"
+
+
+def _criteria_words(page: Page) -> str:
+    """The verdicts that are not met: a confirmed calculation may say that the unit does not do."""
+    judged = [item for case in page.solved.cases for item in case.criteria]
+    if not judged:
+        return "none is stated"
+    failed = [f"{item.id} not met, case {case_name(item.case)}" for item in judged if not item.met]
+    return "; ".join(failed) or "every criterion met in every case"
 
 
 # --- result in brief --------------------------------------------------------------------------------
@@ -150,10 +160,15 @@ def _pressure_rows(page: Page) -> list[tuple[str, str, str]]:
     return rows
 
 
+def _covered(coverage: str) -> str:
+    """What an accuracy holds for, where its card says it."""
+    return f" ({coverage})" if coverage else ""
+
+
 def _accuracy_words(drop: PressureDrop, solution: Solution) -> str:
     """How good the cards of a pressure drop say that they are."""
     stated = [
-        f"{method.id} within {method.accuracy.within}"
+        f"{method.id} within {method.accuracy.within}{_covered(method.accuracy.coverage)}"
         for method in acting_methods(drop, solution)
         if method.accuracy is not None
     ]

@@ -6,9 +6,10 @@ import math
 from collections.abc import Callable, Sequence
 
 from calcbook.chain.analysis import is_found_later, keeps_what_is_found_later
+from calcbook.chain.findings import lacks_freezing_point, lacks_vapour_pressure
 from calcbook.chain.outcome import CriterionResult, CrossRow, Solved
 from calcbook.chain.outside import stands_in_the_open
-from calcbook.chain.types import CONDITIONS, SERVICE, Chain
+from calcbook.chain.types import CONDITIONS, SERVICE
 from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Quote, Table
 from calcbook.record.numbers import celsius, in_report_unit, percent
 from calcbook.record.page import HOUSE_METHOD, Page, case_name, counted
@@ -96,11 +97,6 @@ def _ranges(page: Page) -> str:
     )
 
 
-def _has_no_vapour(chain: Chain, name: str) -> bool:
-    """Whether boiling of a fluid at the wall is not checked, as the assumptions say as well."""
-    return chain.fluids[name].fluid.text.kind not in ("name", "humid air")
-
-
 def _wall_phase(page: Page) -> str:
     checks = [check for check in page.every_check() if check.card == "wall phase"]
     meant = [
@@ -110,12 +106,19 @@ def _wall_phase(page: Page) -> str:
         if branch.situation is not None and branch.situation.changes_phase
     ]
     change = f" A change of phase is meant: {', '.join(meant)}." if meant else ""
-    blind = [name for name in page.chain.fluids if _has_no_vapour(page.chain, name)]
+    fluids, service = page.chain.fluids, page.base.solutions[SERVICE]
+    blind = [name for name, state in fluids.items() if lacks_vapour_pressure(state)]
     if blind:
         change += f" Boiling is not checked for {', '.join(blind)}: no vapour pressure is known."
+    blind = [name for name, state in fluids.items() if lacks_freezing_point(state, service)]
+    if blind:
+        change += (
+            f" Freezing is not checked for {', '.join(blind)}, nor pour point, nor what separates at a cold wall (wax,"
+            " salt): no freezing point is known."
+        )
     failed = [check for check in checks if check.state != "within"]
     if not checks:
-        return "No film has a fluid whose phase at the wall could be checked."
+        return f"No film has a fluid whose phase at the wall could be checked.{change}"
     if not failed:
         return (
             f"{len(checks)} checks against boiling, condensing and freezing at the wall, all within.{change}"
