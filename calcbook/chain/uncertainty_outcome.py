@@ -104,15 +104,26 @@ class SampledResult(NamedTuple):
     high_difference: float
     is_validated: bool
 
+    @property
+    def verdict(self) -> str:
+        """What the samples say of the budget: little, where they stopped before the result was steady."""
+        if not self.is_validated:
+            return "not validated"
+        return "validated" if max(self.spread) <= self.aim else "not settled"
+
 
 class Chance(NamedTuple):
-    """How often a statement holds over the samples, with the standard deviation of that share."""
+    """How often a statement holds, as a share of all samples, with the standard deviation of that share.
+
+    A sample without an answer is one in which it does not hold; ``unanswered`` is the share of those.
+    """
 
     id: str
     text: str
     nominal: bool
     probability: float
     deviation: float
+    unanswered: float
 
 
 class CaseChance(NamedTuple):
@@ -120,7 +131,7 @@ class CaseChance(NamedTuple):
 
     case: str
     chance: Chance
-    answered: int
+    trials: int
 
 
 class OutsideRow(NamedTuple):
@@ -193,8 +204,7 @@ class Uncertainty(NamedTuple):
     def chance(self, case: str, criterion: str) -> CaseChance | None:
         """How often a criterion holds over the samples of a case; None where it is not sampled."""
         if case == self.case and self.sampling is not None:
-            answered = self.sampling.trials - self.sampling.unanswered
-            known = [CaseChance(case, chance, answered) for chance in self.sampling.chances]
+            known = [CaseChance(case, chance, self.sampling.trials) for chance in self.sampling.chances]
         else:
             known = [one for one in self.chances if one.case == case]
         return next((one for one in known if one.chance.id == criterion), None)

@@ -38,7 +38,8 @@ def uncertainty_data(found: Uncertainty) -> Data:
                 "case": one.case,
                 "criterion": one.chance.id,
                 "probability": rounded(one.chance.probability),
-                "samples_with_an_answer": one.answered,
+                "samples": one.trials,
+                "without_answer": rounded(one.chance.unanswered),
             }
             for one in found.chances
         ],
@@ -63,7 +64,7 @@ def displayed_uncertainty(found: Uncertainty) -> Iterator[tuple[str, list[str]]]
         return
     for result in found.sampling.results:
         yield f"uncertainty samples {result.result} / standard", [f"{result.standard:.2g}", result.kind.unit]
-        yield f"uncertainty samples {result.result} / first order", [_verdict(result), ""]
+        yield f"uncertainty samples {result.result} / first order", [result.verdict, ""]
     for chance in found.sampling.chances:
         yield f"uncertainty samples {chance.id}", [f"{chance.probability:.4f}", "1"]
 
@@ -125,13 +126,8 @@ def _sampled(one: SampledResult) -> Data:
         "high": rounded(one.high),
         "unit": one.kind.unit,
         "tolerance": rounded(one.tolerance),
-        "first_order": _verdict(one),
+        "first_order": one.verdict,
     }
-
-
-def _verdict(one: SampledResult) -> str:
-    """Whether the samples bear the budget out."""
-    return "validated" if one.is_validated else "not validated"
 
 
 def _chance(one: Chance) -> Data:

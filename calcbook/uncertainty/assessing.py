@@ -48,6 +48,8 @@ Array = np.ndarray
 # What a budget is made of where the file names no result, as far as the calculation has it.
 USUAL_RESULTS = ("U_service", "U_clean", "area_service", "area_margin")
 MARGIN = "area_margin"
+# Samples of a result that nothing uncertain moves differ by so much of it.
+ROUNDING = 1e-12
 POSITIVE_MARGIN = "area_margin > 0"
 
 
@@ -222,11 +224,9 @@ def _correlations(
                     expected="a tolerance on both givens",
                 )
         found[frozenset((f"given/{one.first}", f"given/{one.second}"))] = one.coefficient
-    if (
-        found
-        and asked is not None
-        and not is_possible(correlation_matrix([figure.id for figure in figures], found))
-    ):
+    if asked is None or not found or not known.issuperset(_correlated(asked)):
+        return found
+    if not is_possible(correlation_matrix([figure.id for figure in figures], found)):
         collector.add(
             "correlation-impossible",
             asked.correlations[0].place,
@@ -235,6 +235,11 @@ def _correlations(
             expected="coefficients that agree with each other",
         )
     return found
+
+
+def _correlated(asked: UncertaintyText) -> set[str]:
+    """The symbols that correlations are stated of."""
+    return {symbol for one in asked.correlations for symbol in (one.first, one.second)}
 
 
 class _Assessment:
@@ -373,7 +378,11 @@ class _Assessment:
             found.blocks,
             found.block_size,
             found.is_capped,
-            tuple(_compared(budget, found.intervals[budget.result]) for budget in budgets),
+            tuple(
+                _compared(budget, interval)
+                for budget in budgets
+                if _is_moved(interval := found.intervals[budget.result])
+            ),
             tuple(_chance(one, texts[one.id], found) for one in statements),
             not_sampled,
             found.trials - found.answered,
@@ -387,9 +396,10 @@ class _Assessment:
         sampling = self._sampling(budgets)
         if sampling is None:
             return []
-        answered = sampling.trials - sampling.unanswered
         return [
-            CaseChance(self.case.name, chance, answered) for chance in sampling.chances if chance.id in wanted
+            CaseChance(self.case.name, chance, sampling.trials)
+            for chance in sampling.chances
+            if chance.id in wanted
         ]
 
     def _statements(self) -> tuple[list[Statement], dict[str, tuple[str, bool]], tuple[str, ...]]:
@@ -438,6 +448,11 @@ class _Assessment:
         return tuple(rows.values())
 
 
+def _is_moved(found: Interval) -> bool:
+    """Whether samples of a result differ by more than the rounding of its circuit."""
+    return found.standard > ROUNDING * abs(found.mean)
+
+
 def _compared(budget: Budget, found: Interval) -> SampledResult:
     """The samples beside the budget: validated where both ends agree within the tolerance (JCGM 101, 8.1)."""
     low = abs(budget.value - budget.expanded - found.low)
@@ -460,6 +475,7 @@ def _compared(budget: Budget, found: Interval) -> SampledResult:
 
 
 def _chance(statement: Statement, text: tuple[str, bool], found: Propagated) -> Chance:
-    share = found.marks[statement.id] / found.answered
-    deviation = math.sqrt(share * (1.0 - share) / found.answered)
-    return Chance(statement.id, text[0], text[1], share, deviation)
+    """How often a statement holds over all samples: of one without an answer nothing can be said to hold."""
+    share = found.marks[statement.id] / found.trials
+    deviation = math.sqrt(share * (1.0 - share) / found.trials)
+    return Chance(statement.id, text[0], text[1], share, deviation, 1.0 - found.answered / found.trials)

@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 
 from calcbook.chain.outcome import CriterionResult
-from calcbook.chain.uncertainty_outcome import Budget, BudgetRow, SampledResult, Sampling, Uncertainty
+from calcbook.chain.uncertainty_outcome import Budget, BudgetRow, Chance, SampledResult, Sampling, Uncertainty
 from calcbook.formulas.names import written_name
 from calcbook.quantities import QuantityKind, in_unit
 from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Table
@@ -49,8 +49,7 @@ def how_sure(page: Page) -> list[Block]:
     samples = found.sampling if found is not None else None
     if found is None or samples is None or not samples.chances:
         return []
-    answered = samples.trials - samples.unanswered
-    words = "; ".join(f"{one.text}: {_chance(one.probability, answered)}" for one in samples.chances)
+    words = "; ".join(f"{one.text}: {_held(one, samples.trials)}" for one in samples.chances)
     return [
         Paragraph(
             f"Probability that it holds in {_case(found)}, from the uncertainties of section 11: {words}."
@@ -68,7 +67,7 @@ def certainty_words(found: Uncertainty | None, item: CriterionResult) -> str:
         return ""
     known_chance = found.chance(item.case, item.id)
     if known_chance is not None:
-        held = _chance(known_chance.chance.probability, known_chance.answered)
+        held = _held(known_chance.chance, known_chance.trials)
         lacking = _lacking(_missing_in(found, item.case), ", without")
         if math.isnan(item.required):
             return f"{AT_STATED}; holds with {held}{lacking}"
@@ -337,9 +336,12 @@ def _sampled(found: Uncertainty, page: Page) -> list[Block]:
             else "Fewer than half of the samples have an answer: no figure is made from the others."
         )
         return [heading, Paragraph(words)]
+    budgets = {budget.result: budget for budget in found.budgets}
+    still = [name for name in budgets if name not in {one.result for one in samples.results}]
     blocks: list[Block] = [
         heading,
         Paragraph(_how(samples)),
+        *([Paragraph(f"Nothing that is drawn moves {', '.join(still)}.")] if still else []),
         Table(
             (
                 "Result",
@@ -352,18 +354,22 @@ def _sampled(found: Uncertainty, page: Page) -> list[Block]:
                 "Tolerance",
                 "First order",
             ),
-            tuple(
-                _sampled_row(one, budget, page)
-                for one, budget in zip(samples.results, found.budgets, strict=True)
-            ),
+            tuple(_sampled_row(one, budgets[one.result], page) for one in samples.results),
         ),
         Paragraph(
             "First order is validated where both ends of its interval lie within the tolerance, half of the last"
             " digit made sure of, of those of the samples (JCGM 101:2008, 8.1); otherwise the samples are to be"
-            " preferred."
+            f" preferred.{_unsettled(samples)}"
         ),
     ]
     return [*blocks, *_chances(samples), *_counts(samples)]
+
+
+def _unsettled(samples: Sampling) -> str:
+    """What a result that was not steady when the samples stopped is called."""
+    if all(one.verdict != "not settled" for one in samples.results):
+        return ""
+    return " It is not settled where the samples stopped before the result was steady."
 
 
 def _how(samples: Sampling) -> str:
@@ -396,21 +402,20 @@ def _sampled_row(one: SampledResult, budget: Budget, page: Page) -> tuple[str, .
         f"{shown(budget.value - budget.expanded)} to {shown(budget.value + budget.expanded)}",
         f"{low} and {high}",
         number(in_unit(one.tolerance, _step(unit)), 1),
-        "validated" if one.is_validated else "not validated",
+        one.verdict,
     )
 
 
 def _chances(samples: Sampling) -> list[Block]:
     if not samples.chances and not samples.not_sampled:
         return []
-    answered = samples.trials - samples.unanswered
     blocks: list[Block] = []
     if samples.chances:
         rows = tuple(
             (
                 one.text,
                 "holds" if one.nominal else "does not hold",
-                _chance(one.probability, answered),
+                _held(one, samples.trials),
                 f"{number(100.0 * one.deviation, 2)} %" if one.deviation else "no other case seen",
             )
             for one in samples.chances
@@ -427,12 +432,20 @@ def _chances(samples: Sampling) -> list[Block]:
     return blocks
 
 
-def _chance(probability: float, answered: int) -> str:
+def _held(chance: Chance, trials: int) -> str:
+    """How often a statement holds, with the samples that count against it for want of an answer."""
+    words = _chance(chance.probability, trials)
+    if not chance.unanswered:
+        return words
+    return f"{words} ({fixed(100.0 * chance.unanswered, 2)} % of the samples have no answer and count against it)"
+
+
+def _chance(probability: float, trials: int) -> str:
     """A probability in per cent; never a certainty, where the samples merely show no other case."""
     if probability in (0.0, 1.0):
         # Rounded away from certainty, with the digits that show it.
-        digits = max(3, 1 - math.floor(math.log10(300.0 / answered)))
-        bound = math.ceil(300.0 / answered * 10.0**digits - 1e-6) / 10.0**digits
+        digits = max(3, 1 - math.floor(math.log10(300.0 / trials)))
+        bound = math.ceil(300.0 / trials * 10.0**digits - 1e-6) / 10.0**digits
         words = ("less than", bound) if probability == 0.0 else ("more than", 100.0 - bound)
         return f"{words[0]} {fixed(words[1], digits)} %"
     return f"{fixed(100.0 * probability, 2)} %"
