@@ -232,10 +232,11 @@ class _Analysis:
                 if self.collector:
                     return None
                 raise NotConverged(self.chain.calculation.number, name, condition)
-        ends = closed_ends(end_states(self.chain, inputs, solutions))
+        states = end_states(self.chain, inputs, solutions)
+        ends = closed_ends(states)
         results = self._results(solutions, inputs, ends)
         self.results = self.results or results
-        checks = (*self._checks(name, solutions), *end_checks(ends, name), *self._along(ends, name))
+        checks = (*self._checks(name, solutions), *end_checks(states, name), *self._along(ends, name))
         for check in checks:
             if check.level == "stop" and check.state == "outside":
                 self._report_stop(check)

@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, replace
 
 import numpy as np
 
 from calcbook.chain.completing import completed
-from calcbook.chain.findings import wall_checks
+from calcbook.chain.findings import ending_properties, wall_checks
 from calcbook.chain.outcome import CheckResult
 from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.solve import Solution, conditions_of, solve, solve_both
@@ -16,6 +17,7 @@ from calcbook.chain.types import CONDITIONS, Chain
 from calcbook.chain.variants import with_figures
 
 Array = np.ndarray
+OPEN_END = "duty / ends / circuit"
 PLACES = ("at the hot inlet", "at the hot outlet")
 
 
@@ -129,20 +131,51 @@ def _start(solutions: Mapping[str, Solution]) -> Array | None:
 
 def closed_ends(states: tuple[EndState, ...]) -> tuple[EndState, ...]:
     """The ends of a single record at which the circuit closes, each as a solution of its own."""
-    return tuple(
-        replace(state, solution=state.solution.sample(0))
-        for state in states
-        if state.solution.converged.reshape(-1)[0]
-    )
+    return tuple(replace(state, solution=state.solution.sample(0)) for state in states if _closes(state))
 
 
 def end_checks(states: tuple[EndState, ...], case: str) -> list[CheckResult]:
-    """Against boiling, condensing and freezing at the wall at both ends of a single record."""
-    return [
+    """Against boiling, condensing and freezing at the wall at both ends of a single record.
+
+    Of an end at which the circuit does not close nothing of that is known, which is a limit of its own.
+    """
+    found = [
         check._replace(id=id_at(check.id, state))
-        for state in states
+        for state in closed_ends(states)
         for check in wall_checks(state.chain, case, state.solution)
     ]
+    return found + [_open_end(state, case) for state in states if not _closes(state)]
+
+
+def _closes(state: EndState) -> bool:
+    """Whether the circuit of a single record closes at an end."""
+    return bool(state.solution.converged.reshape(-1)[0])
+
+
+def _open_end(state: EndState, case: str) -> CheckResult:
+    solution = state.solution.sample(0)
+    lacks = [
+        f"{branch.stream} has no {name} at the temperature of the other side"
+        for branch, _, name, missing in ending_properties(state.chain, solution)
+        if bool(missing)
+    ]
+    return CheckResult(
+        id_at(OPEN_END, state),
+        "duty",
+        "wall phase",
+        solution.condition,
+        case,
+        "the circuit closes",
+        "; ".join(("the circuit does not close", *lacks[:1])),
+        "the circuit closes",
+        math.nan,
+        "1",
+        "range",
+        "not evaluable",
+        "boiling, condensing and freezing at the wall are not known there",
+        "",
+        "common practice",
+    )
 
 
 def id_at(name: str, state: EndState) -> str:

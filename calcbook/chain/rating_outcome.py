@@ -102,9 +102,13 @@ class DayOne(NamedTuple):
 
 
 class Rating(NamedTuple):
-    """Everything that the rating of the base case adds to a solved calculation."""
+    """Everything that the rating of the base case adds to a solved calculation.
+
+    ``no_day_one`` says why the unit has no answer on day one; empty where it has one or none is asked for.
+    """
 
     ledger: tuple[LedgerRow, ...]
     ledger_sum: float
     parts: Parts | None
     day_one: DayOne | None
+    no_day_one: str = ""

@@ -156,13 +156,15 @@ def evaluate_samples(
     phases: Mapping[str, Sequence[str]] | None = None,
     directions: Sequence[float] = (),
     start: Array | None = None,
+    ends_close: bool = False,
 ) -> Samples:
     """Solve samples (inputs by id, one row or one figure for all) clean and in service, with every verdict.
 
     ``case_of`` is the place in ``cases`` that each sample belongs to: acceptances may hold for one case only.
     ``phases`` are the phases of streams by case, ``directions`` the signs of the heat flow: a sample in which one
     is another gets no answer. ``start`` are unknowns of like samples to begin from. The calculation's own cases must
-    have solved without a fault.
+    have solved without a fault. Where their circuits close at both ends of a duty (``ends_close``), a sample whose
+    circuit does not has no answer.
     """
     size = max(np.size(value) for value in inputs.values())
     belongs = case_of if case_of is not None else np.zeros(size, dtype=int)
@@ -181,7 +183,7 @@ def evaluate_samples(
             inputs = {
                 name: value[samples.solved] if np.ndim(value) else value for name, value in inputs.items()
             }
-        _solve(chain, inputs, cases, belongs[samples.solved], samples, start)
+        _solve(chain, inputs, cases, belongs[samples.solved], samples, start, ends_close)
     if directions and "heat_flow_service" in samples.results:
         flow = np.sign(samples.results["heat_flow_service"].values)
         samples.mark(flow != np.array(directions)[belongs[samples.solved]], TURNED, samples.solved)
@@ -202,6 +204,7 @@ def _solve(
     case_of: Array,
     samples: Samples,
     start: Array | None,
+    ends_close: bool,
 ) -> None:
     if start is not None:
         start = np.concatenate(list(start[:, :, samples.solved]), axis=1)
@@ -213,6 +216,12 @@ def _solve(
         for place, condition in enumerate(CONDITIONS):
             samples.unknowns[place][:, samples.solved] = solutions[condition].unknowns
     ends = end_states(chain, inputs, solutions, thorough=False)
+    for state in ends if ends_close else ():
+        samples.mark(
+            ~state.solution.converged,
+            f"{OPEN_CIRCUIT} {state.place}, {state.solution.condition}",
+            samples.solved,
+        )
     samples.results = result_figures(chain, solutions) | surfaces_at_ends(ends)
     if any(name.startswith(LARGEST_ALLOWANCE) for name in _results_asked(chain)):
         samples.results |= allowance_figures(chain, inputs, solutions[SERVICE], thorough=False)

@@ -20,12 +20,12 @@ from calcbook.chain.completing import completed
 from calcbook.chain.duty import OWNER as DUTY
 from calcbook.chain.duty import PASSES
 from calcbook.chain.ends import closed_ends, end_checks, end_states
-from calcbook.chain.findings import wall_checks
+from calcbook.chain.findings import ending_properties, wall_checks
 from calcbook.chain.outcome import CheckResult, CriterionResult, Solved
 from calcbook.chain.plausible import band_checks
 from calcbook.chain.rating_outcome import WITH_ALLOWANCES, DayOne, SideState, UnitState
 from calcbook.chain.solve import Solution, chosen, solve
-from calcbook.chain.types import CLEAN, SERVICE, Branch, Chain, Group
+from calcbook.chain.types import CLEAN, SERVICE, Branch, Chain, Group, Layer
 from calcbook.chain.variants import with_figures
 from calcbook.faults import Collector
 from calcbook.quantities import read_any
@@ -47,8 +47,11 @@ class _Judged(NamedTuple):
 NOTHING = _Judged()
 
 
-def day_one(solved: Solved) -> DayOne | None:
-    """The clean unit at the duty's inlets; None where a flow is missing that it takes, or nothing fouls."""
+def day_one(solved: Solved) -> DayOne | str | None:
+    """The clean unit at the duty's inlets, or in words why it has no answer there.
+
+    None where a flow is missing that it takes, or nothing fouls.
+    """
     if not any(row.kind == "fouling" for row in solved.base.terms[SERVICE]):
         return None
     chain = open_chain(solved, "hot", "cold")
@@ -59,10 +62,13 @@ def day_one(solved: Solved) -> DayOne | None:
         chain, open_figures=tuple(replace(item, condition=CLEAN) for item in chain.open_figures)
     )
     states = {SERVICE: (chain, SERVICE), CLEAN: (clean_chain, CLEAN)}
-    solutions = {name: _solution(one, inputs, condition) for name, (one, condition) in states.items()}
+    solutions = {name: solve(one, inputs, condition) for name, (one, condition) in states.items()}
+    for name, solution in solutions.items():
+        if not bool(np.all(solution.converged)):
+            which = "the clean unit" if name == CLEAN else "the unit with its allowances"
+            why = _lacking(states[name][0], solution)
+            return f"the circuit of {which} does not close at the inlets of the duty{why}"
     clean, in_service = solutions[CLEAN], solutions[SERVICE]
-    if clean is None or in_service is None:
-        return None
     turned_down, reason, judged = _turned_down(solved)
     with_allowances = tuple(
         check._replace(condition=WITH_ALLOWANCES) for check in _limits_of_duty(chain, in_service)
@@ -114,6 +120,14 @@ def _with_inlet(solved: Solved, name: str, side: DutySide) -> DutySide:
     return replace(
         side, inlet=Value(text, side.place, quantity=read_any(text), source="found", has_source=True)
     )
+
+
+def _lacking(chain: Chain, solution: Solution) -> str:
+    """What a fluid lacks at the temperature of the other side, which explains that a circuit does not close."""
+    for branch, _, name, missing in ending_properties(chain, solution):
+        if bool(np.all(missing)):
+            return f": {branch.stream} has no {name} at the temperature of the other side"
+    return ""
 
 
 def _solution(chain: Chain, inputs: Mapping[str, Array], condition: str) -> Solution | None:
@@ -216,12 +230,12 @@ def _film_of(chain: Chain, stream: str) -> tuple[Group, Branch]:
 
 
 def _ranges(chain: Chain, solution: Solution) -> list[CheckResult]:
-    """The ranges that the films' coefficients hold for, methods and stated ones."""
+    """The ranges that films, methods and stated ones, and the layers between them hold for."""
+    films = [check for branch in chain.branches for check in chosen(branch, solution).checks]
+    layers = [check for element in chain.elements if isinstance(element, Layer) for check in element.checks]
     return [
         evaluate_check(check, solution, "", chain.dimensions)
-        for group in (chain.inner, chain.outer)
-        for branch in group.branches
-        for check in chosen(branch, solution).checks
+        for check in (*films, *layers)
         if check.limit.level == "range"
     ]
 
@@ -229,8 +243,9 @@ def _ranges(chain: Chain, solution: Solution) -> list[CheckResult]:
 def _judged(chain: Chain, inputs: Mapping[str, Array], solution: Solution, state: str) -> _Judged:
     """Phases at the wall, at the means and at both ends, what the duty itself limits, and figures outside their
     bands, of the clean unit; and the criteria on its temperatures."""
-    ends = closed_ends(end_states(chain, inputs, {CLEAN: solution}))
-    phases = [*wall_checks(chain, "", solution), *end_checks(ends, "")]
+    states = end_states(chain, inputs, {CLEAN: solution})
+    ends = closed_ends(states)
+    phases = [*wall_checks(chain, "", solution), *end_checks(states, "")]
     found = [check for check in phases if check.state != "within"]
     found += [check for check in _ranges(chain, solution) if check.state in ("outside", "not evaluable")]
     found += _limits_of_duty(chain, solution)

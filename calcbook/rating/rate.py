@@ -6,6 +6,7 @@ from dataclasses import replace
 
 from calcbook.chain.outcome import Solved
 from calcbook.chain.rating_outcome import Rating
+from calcbook.chain.types import OpenItem
 from calcbook.rating.day_one import day_one
 from calcbook.rating.ledger import ledger
 from calcbook.rating.parts import parts, with_parts
@@ -16,12 +17,15 @@ def rated(solved: Solved) -> Solved:
     if "duty" not in solved.chain.results:
         return solved
     rows = ledger(solved)
-    along = parts(solved)
-    rating = Rating(
-        rows,
-        sum(row.area for row in rows),
-        along,
-        day_one(solved),
-    )
-    rated_so = replace(solved, rating=rating)
-    return with_parts(rated_so, along) if along is not None else rated_so
+    along, first = parts(solved), day_one(solved)
+    day, reason = (None, first) if isinstance(first, str) else (first, "")
+    rating = Rating(rows, sum(row.area for row in rows), along, day, reason)
+    solved = replace(solved, rating=rating)
+    if reason:
+        solved = _with_open_item(solved, OpenItem("day one", "check", f"Day one has no answer: {reason}."))
+    return with_parts(solved, along) if along is not None else solved
+
+
+def _with_open_item(solved: Solved, item: OpenItem) -> Solved:
+    base = replace(solved.base, open_items=(*solved.base.open_items, item))
+    return replace(solved, cases=(base, *solved.cases[1:]))

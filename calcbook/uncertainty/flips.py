@@ -19,6 +19,7 @@ from decimal import ROUND_CEILING, ROUND_FLOOR, Context, Decimal
 import numpy as np
 
 from calcbook.calcfile.calculation import Given
+from calcbook.chain.ends import OPEN_END
 from calcbook.chain.flips_outcome import CONTROLLING, CRITERION, LIMIT, METHOD, Flip, Flips, Searched
 from calcbook.chain.outcome import CaseOutcome, Solved
 from calcbook.chain.samples import (
@@ -213,6 +214,7 @@ class _Search:
             for case in cases
             if "heat_flow_service" in case.results
         ]
+        self.ends_close = not any(check.id.startswith(OPEN_END) for case in cases for check in case.checks)
         self.table = _Table()
         self.lines: list[_Line] = []
         self.best: dict[Group, _Bracket] = {}
@@ -295,7 +297,7 @@ class _Search:
             inputs = {name: np.full(len(case_of), value) for name, value in inputs.items()}
         near = self._near(part, ahead)
         samples = evaluate_samples(
-            self.chain, inputs, self.names, case_of, self.phases, self.directions, near
+            self.chain, inputs, self.names, case_of, self.phases, self.directions, near, self.ends_close
         )
         return self.table.takes(samples) + ahead
 

@@ -43,7 +43,8 @@ def check_limits(samples: Samples, case: CaseOutcome) -> None:
             assert word(samples, LIMIT, check.id, check.condition) == check.state, check.id
             compared += 1
     assert compared > 5
-    limits = [key for key in samples.verdicts if key[0] == LIMIT]
+    # A record leaves out a limit of gases where the stream is a liquid.
+    limits = [key for key in samples.verdicts if key[0] == LIMIT and word(samples, *key) != "not counting"]
     assert {(name, condition) for _, name, condition in limits} <= {
         (check.id, check.condition) for check in case.checks
     }

@@ -125,6 +125,7 @@ def _ledger(page: Page, rating: Rating) -> list[Block]:
     words = (
         "The area of a resistance is Q/ΔT_mean times that resistance on the basis area, so that the entries add"
         " up. Each margin stands on its own line; they are stacked, and none of them is a reserve for another."
+        f"{_base_alone(page)}"
     )
     blocks: list[Block] = [
         Heading(3, "Margin ledger"),
@@ -280,9 +281,16 @@ def two_ways(page: Page) -> list[Block]:
 # --- section 12 -------------------------------------------------------------------------------------
 
 
+def _base_alone(page: Page) -> str:
+    """That a section is of the base case, where there are others."""
+    return " It is of the base case; no other case is worked out here." if page.calculation.cases else ""
+
+
 def day_one_blocks(page: Page) -> list[Block]:
     """The clean unit at the inlets of the duty, where there is a duty and something fouls."""
-    day = page.day_one
+    rating, day = page.solved.rating, page.day_one
+    if rating is not None and rating.no_day_one:
+        return [Heading(3, "Day one"), Paragraph(f"Day one has no answer: {rating.no_day_one}.")]
     if day is None:
         return []
     states = {WITH_ALLOWANCES: day.service, "clean": day.clean}
@@ -293,7 +301,7 @@ def day_one_blocks(page: Page) -> list[Block]:
         Paragraph(
             "The unit at the inlets of the duty, its outlets found by effectiveness: with its allowances, clean,"
             " and clean with the cold flow turned down until the hot stream leaves as the duty states. Turning down the cold"
-            " flow is one way of control, taken here for its bearing on deposits."
+            f" flow is one way of control, taken here for its bearing on deposits.{_base_alone(page)}"
         ),
         Table(("Figure", *states), tuple(_state_rows(page, list(states.values())))),
     ]
@@ -313,8 +321,8 @@ def day_one_blocks(page: Page) -> list[Block]:
     else:
         blocks.append(
             Paragraph(
-                "The clean unit neither boils nor freezes at the wall, and every figure stays within its range and"
-                " usual window."
+                "Every limit of phase at a wall that is known, every range of a method, a wall or a stated film, and every"
+                " usual window is held in these states."
             )
         )
     if day.criteria:

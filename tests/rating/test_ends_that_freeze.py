@@ -1,0 +1,74 @@
+"""Water that freezes at the wall of one end: the circuit does not close there, and nothing of that is passed over."""
+
+from __future__ import annotations
+
+import re
+from pathlib import Path
+
+import pytest
+
+from calcbook.chain.ends import OPEN_END
+from calcbook.chain.outcome import Solved
+from calcbook.interface import record_text, solve_file
+
+CALCS = Path(__file__).resolve().parents[2] / "calcs"
+
+
+def cooled(folder: Path, cold: str) -> Solved:
+    """WC-105 with water from 14 to 9 °C against glycol that enters at ``cold``; its outlet is found."""
+    text = (CALCS / "wc-105.yaml").read_text(encoding="utf-8")
+    for symbol, value in (("T_hi", "14 degC"), ("T_ho", "9 degC"), ("T_ci", cold)):
+        text = re.sub(rf"(?m)^(  {symbol}: +{{value: )[^,]+", rf"\g<1>{value}", text)
+    glycol = "  cold:\n    fluid: {mixture: ethylene glycol + water, mass fraction: {value: 45 %, source: s}}"
+    text = text.replace("  cold:\n    fluid: water", glycol)
+    text = text.replace(
+        "material: stainless-316-kaschnitz-2017", "conductivity: {value: 14 W/(m K), source: s}"
+    )
+    text = text.replace("inlet: T_ci, outlet: T_co", "inlet: T_ci")
+    text = re.sub(r"(?ms)^(sweep|acceptance):.*?(?=^\S)", "", text)
+    path = folder / "wc-105.yaml"
+    path.write_text(text, encoding="utf-8")
+    return solve_file(path)
+
+
+def test_an_end_that_freezes_is_an_open_item_and_no_limit_within(tmp_path: Path) -> None:
+    """By hand, with the record's own clean figures: T_s = T_ho − (T_ho − T_ci)·U·(d_o/d_i)/h at the hot outlet of
+    counterflow, where the glycol enters."""
+    solved = cooled(tmp_path, "-17 degC")
+    clean = solved.base.solutions["clean"]
+    overall, film = (
+        clean.number(solved.chain.results["U"]),
+        clean.number(solved.chain.results["h tube-side film"]),
+    )
+    assert 9.0 - (9.0 + 17.0) * overall * (19.05 / 15.75) / film < -1.0
+    (found,) = (check for check in solved.base.checks if check.id.startswith(OPEN_END))
+    assert (found.id, found.condition) == (f"{OPEN_END} at the hot outlet", "clean")
+    assert found.state == "not evaluable" and "hot has no viscosity" in found.figure
+    assert [item.id for item in solved.open_items] == [f"{OPEN_END} at the hot outlet / clean"]
+    page = record_text(solved)
+    assert "of 16 checks at the wall are not within" in page
+    assert "is held in these states" not in page
+
+
+def test_a_search_stops_where_an_end_freezes(tmp_path: Path) -> None:
+    """In service both ends of the unit and clean both are free of ice at −10 °C; colder glycol ends that."""
+    solved = cooled(tmp_path, "-10 degC")
+    assert not [check for check in solved.base.checks if check.id.startswith(OPEN_END)]
+    row = next(row for row in solved.flips.searched if row.input.symbol == "T_ci")
+    assert row.low_end == "the circuit does not close at the hot outlet, clean"
+    assert -17.0 < row.low < -10.0
+
+
+@pytest.mark.parametrize(("cold", "answers"), [("-10 degC", True), ("-19 degC", False)])
+def test_day_one_without_an_answer_is_told(tmp_path: Path, cold: str, answers: bool) -> None:
+    solved = cooled(tmp_path, cold)
+    assert (solved.rating.day_one is not None) is answers
+    page = record_text(solved)
+    assert ("Day one has no answer: the circuit of the clean unit does not close" in page) is not answers
+    assert ("day one" in {item.id for item in solved.open_items}) is not answers
+
+
+def test_day_one_and_the_ledger_say_that_they_are_of_the_base_case(tmp_path: Path) -> None:
+    words = "It is of the base case; no other case is worked out here."
+    assert record_text(solve_file(CALCS / "hr-821.yaml")).count(words) == 2
+    assert words not in record_text(solve_file(CALCS / "wc-105.yaml"))
