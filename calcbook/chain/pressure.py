@@ -293,11 +293,11 @@ def pressure_drop_checks(chain: Chain, solution: Solution) -> list[ChainCheck]:
     for _, _, drop in drops(chain):
         law = law_of(drop, solution)
         checks += law.checks if law is not None else ()
-        checks += [check for check in drop.total.checks if not _is_of_a_gas(check, solution)]
+        checks += [check for check in drop.total.checks if not _is_idle(check, solution)]
     return checks
 
 
-def _is_of_a_gas(check: ChainCheck, solution: Solution) -> bool:
+def _is_idle(check: ChainCheck, solution: Solution) -> bool:
     """Whether a limit is for gases and the stream a liquid: it is not shown then."""
     return check.card == DROP and state_of_check(check, solution) == "not counting"
 

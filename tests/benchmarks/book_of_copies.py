@@ -4,6 +4,9 @@ Run with `python tests/benchmarks/book_of_copies.py [copies]`. Each copy is read
 conditions with its cross-check and sensitivity, and its record and results are written, in one process. Beside it
 stand the bare calls of the property backend for the states of one calculation (bulk, and surface clean and in
 service), with the backend loaded. All in processor time.
+
+A record also says at which change of each given a verdict flips, for which the same circuit is closed at many more
+states: what bare calls for the answers of all of those would take is printed beside it.
 """
 
 from __future__ import annotations
@@ -20,7 +23,9 @@ sys.path.insert(0, str(Path(__file__).parent.parent / "chain"))
 from small_calculations import COOLER_GIVENS, COOLER_REST, HEAD, givens
 
 from calcbook.book import Found, run_all
+from calcbook.chain.samples import Samples, evaluate_samples
 from calcbook.interface import solve_file
+from calcbook.uncertainty import flips
 
 PROPERTIES = ("rhomass", "viscosity", "conductivity", "cpmass")
 
@@ -77,6 +82,23 @@ def calls_by_name(solved) -> float:  # type: ignore[no-untyped-def]
     return time.process_time() - start
 
 
+def searched_samples(path: Path) -> int:
+    """How many samples the search for distances to flip solves in one calculation."""
+    found: list[int] = []
+
+    def counted(*arguments: object) -> Samples:
+        samples = evaluate_samples(*arguments)  # type: ignore[arg-type]
+        found.append(len(samples.solved))
+        return samples
+
+    flips.evaluate_samples = counted
+    try:
+        solve_file(path)
+    finally:
+        flips.evaluate_samples = evaluate_samples
+    return sum(found)
+
+
 def main() -> None:
     copies = int(sys.argv[1]) if len(sys.argv) > 1 else 200
     with tempfile.TemporaryDirectory() as folder:
@@ -86,6 +108,7 @@ def main() -> None:
         run_all(files, 1, lambda outcome: None)
         whole = (time.process_time() - start) / copies
         sample = [solve_file(file.path) for file in files[:20]]
+        searched = searched_samples(files[0].path)
     for ask in (calls_of_a_state, calls_by_name):
         ask(sample[0])
     state, named = (
@@ -98,6 +121,11 @@ def main() -> None:
     print(
         f"bare backend calls of its three states: {1e3 * state:.2f} ms on one state object (ratio {whole / state:.0f}),"
         f" {1e3 * named:.2f} ms asked by name (ratio {whole / named:.0f}); aim 3"
+    )
+    print(
+        f"for the {searched} samples of its search, as many times three states: {1e3 * searched * state:.0f} ms on one"
+        f" state object (ratio {whole / (searched * state):.2f}), {1e3 * searched * named:.0f} ms asked by name (ratio"
+        f" {whole / (searched * named):.2f})"
     )
 
 
