@@ -39,8 +39,7 @@ def read_specified(reader: Reader, terms: tuple[Term, ...]) -> FoulingSpecified 
     value.is_share(stated[0], reader.collector)
     open_terms = [term.name for term in terms if is_open(term)]
     sides = _open_on_sides(terms)
-    alone = {side: names[0] for side, names in sides.items() if len(names) == 1}
-    split = _split(reader, fields.node("split"), alone)
+    split = _split(reader, fields.node("split"), _alone(sides))
     _check_split(reader, node, split, open_terms, sides)
     return FoulingSpecified(stated[0], value, split, node.place)
 
@@ -87,6 +86,7 @@ def _check_split(
     sides: dict[str, list[str]],
 ) -> None:
     """Every open term has its share, and the shares make one."""
+    alone = list(_alone(sides))
     for name, value in split.items():
         if len(sides.get(name, ())) > 1:
             _refuse(
@@ -101,9 +101,9 @@ def _check_split(
                 value.place,
                 f"no fouling term without a resistance is called `{shown(name)}`",
                 found=shown(name),
-                expected=", ".join([*open_terms, *_named_by_side(sides)])
+                expected=", ".join([*open_terms, *alone])
                 or "a term of kind fouling that states no resistance",
-                nearest=nearest_names(name, open_terms) or nearest_names(name, _named_by_side(sides)),
+                nearest=nearest_names(name, open_terms) or nearest_names(name, alone),
             )
     missing = [name for name in open_terms if name not in split]
     if not open_terms:
@@ -123,9 +123,9 @@ def _check_split(
         _refuse(reader, node, "a share of the split is below zero", "shares from 0 to 100 %")
 
 
-def _named_by_side(sides: dict[str, list[str]]) -> list[str]:
-    """The sides that name a term of their own: those with one open term."""
-    return [side for side, names in sides.items() if len(names) == 1]
+def _alone(sides: dict[str, list[str]]) -> dict[str, str]:
+    """The open term of every side that has one alone: there the side names it."""
+    return {side: names[0] for side, names in sides.items() if len(names) == 1}
 
 
 def _refuse(reader: Reader, node: Node, message: str, expected: str) -> None:

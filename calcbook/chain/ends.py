@@ -9,7 +9,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from calcbook.chain.completing import completed
-from calcbook.chain.findings import ending_properties, wall_checks
+from calcbook.chain.findings import lacking_property, wall_checks
 from calcbook.chain.outcome import CheckResult
 from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.solve import Solution, conditions_of, solve, solve_both
@@ -154,11 +154,7 @@ def _closes(state: EndState) -> bool:
 
 def _open_end(state: EndState, case: str) -> CheckResult:
     solution = state.solution.sample(0)
-    lacks = [
-        f"{branch.stream} has no {name} at the temperature of the other side"
-        for branch, _, name, missing in ending_properties(state.chain, solution)
-        if bool(missing)
-    ]
+    why = lacking_property(state.chain, solution)
     return CheckResult(
         id_at(OPEN_END, state),
         "duty",
@@ -166,7 +162,7 @@ def _open_end(state: EndState, case: str) -> CheckResult:
         solution.condition,
         case,
         "the circuit closes",
-        "; ".join(("the circuit does not close", *lacks[:1])),
+        "the circuit does not close" + (f"; {why}" if why else ""),
         "the circuit closes",
         math.nan,
         "1",

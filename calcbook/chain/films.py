@@ -637,6 +637,15 @@ class FilmScope:
 
     # -- a method laid out ----------------------------------------------------------------------------
 
+    def laid_out(self, program: Program) -> dict[str, str] | None:
+        """A card and those that it uses laid out and named among the cards; its ids by symbol, None after a fault."""
+        names = self.bind_needs(program)
+        if names is None:
+            return None
+        self.lay_out(program, names)
+        self.scope.cards |= {f"method {card.id}": card.digest_text for card in program.cards}
+        return names
+
     def candidate(self, method: str, because: str, is_used: bool = True) -> Candidate | None:
         """Lay out a method on this film; None after a fault. What only checks another method takes no factor."""
         try:

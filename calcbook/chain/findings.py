@@ -646,13 +646,19 @@ def lacks_freezing_point(state: StreamState, solution: Solution) -> bool:
     """Whether freezing at the wall cannot be checked of a stream that is, or may be, a liquid."""
     if state.phase == "gas" or state.fluid.text.kind == "humid air":
         return False
+    try:
+        fluid = state.fluid.state(*_pressure_and_fraction(state, solution), state.phase)
+    except PropertyFault:
+        return False
+    return fluid.freezing_temperature() is None
+
+
+def _pressure_and_fraction(state: StreamState, solution: Solution) -> tuple[float | None, float | None]:
+    """The figures of a single record that a fluid's state takes beside its temperature; None for one it has not."""
     pressure, fraction = (
         solution.number(name) if name else None for name in (state.pressure, state.fraction)
     )
-    try:
-        return state.fluid.state(pressure, fraction, state.phase).freezing_temperature() is None
-    except PropertyFault:
-        return False
+    return pressure, fraction
 
 
 def _wall_facts(state: StreamState, phase: str, pressure: float, fraction: float) -> _WallFacts | None:
@@ -766,6 +772,14 @@ def ending_properties(chain: Chain, solution: Solution) -> Iterator[tuple[Branch
                 if all(bound in at for bound in step.inputs.values()):
                     value = operation.value({local: at[bound] for local, bound in step.inputs.items()})
                     yield branch, other, operation.property_name, ~np.isfinite(value)
+
+
+def lacking_property(chain: Chain, solution: Solution) -> str:
+    """Why the circuit of a single record does not close, where a fluid ends before the other side; else empty."""
+    for branch, _, name, missing in ending_properties(chain, solution):
+        if missing.all():
+            return f"{branch.stream} has no {name} at the temperature of the other side"
+    return ""
 
 
 # --- what the runner decided ------------------------------------------------------------------------
@@ -905,8 +919,7 @@ def assumptions_of(chain: Chain, solutions: Mapping[str, Solution]) -> tuple[Run
             )
         if not state.phase:
             solution = solutions[SERVICE]
-            pressure = solution.number(state.pressure) if state.pressure else None
-            fraction = solution.number(state.fraction) if state.fraction else None
+            pressure, fraction = _pressure_and_fraction(state, solution)
             at = solution.number(state.temperature) if state.temperature in solution.values else math.nan
             if math.isfinite(at):
                 phase = state.fluid.state(pressure, fraction, "").phase_at(at)

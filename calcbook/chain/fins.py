@@ -395,11 +395,9 @@ class _Series:
         """The result of a fin card laid out, and its checks."""
         film = FilmScope(self.scope, self.library, self.finned.term, self.group.name, figures)
         program = self.library.program(method)
-        names = film.bind_needs(program)
+        names = film.laid_out(program)
         if names is None:
             return None
-        film.lay_out(program, names)
-        self.scope.cards |= {f"method {card.id}": card.digest_text for card in program.cards}
         return names[program.result], film.checks(program, names)
 
     def _own_steps(self, wanted: list[str]) -> tuple[ChainStep, ...]:

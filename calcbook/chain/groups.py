@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import replace
 
 from calcbook.calcfile.calculation import Term, unknown_symbol
@@ -121,14 +122,8 @@ class Groups:
         return None
 
     def _film(self, term: Term, group: str, side: str) -> Branch | None:
-        for key in ("stream", "situation"):
-            if key not in term.texts:
-                self.scope.collector.add(
-                    "key-missing",
-                    term.place,
-                    f"the film `{term.name}` lacks `{key}`",
-                    expected="stream and situation, or a stated coefficient",
-                )
+        expected = "stream and situation, or a stated coefficient"
+        self._tell_missing(term, "film", ("stream", "situation"), expected, term.texts)
         stream = self._stream_of(term)
         name = term.texts.get("situation", "")
         if not name:
@@ -187,6 +182,16 @@ class Groups:
         for candidate in branch.candidates if branch is not None else ():
             refuse_withdrawn(self.scope, candidate.method.id, candidate.method.state, term)
         return branch
+
+    def _tell_missing(
+        self, term: Term, what: str, keys: tuple[str, ...], expected: str, stated: Mapping[str, object]
+    ) -> None:
+        """A fault for each key that a term must have and does not state."""
+        for key in keys:
+            if key not in stated:
+                self.scope.collector.add(
+                    "key-missing", term.place, f"the {what} `{term.name}` lacks `{key}`", expected=expected
+                )
 
     def _wetted(self, side: str) -> tuple[dict[str, str], tuple[str, str] | None]:
         """Dimensions of the surface a film touches: a deposit that narrows moves it in service."""
@@ -409,14 +414,8 @@ class Groups:
         surroundings = self.scope.value(
             term.values.get("surroundings"), "temperature", term.name, "surroundings"
         )
-        for key in ("emissivity", "surroundings"):
-            if key not in term.values:
-                self.scope.collector.add(
-                    "key-missing",
-                    term.place,
-                    f"the radiation `{term.name}` lacks `{key}`",
-                    expected="emissivity and surroundings",
-                )
+        keys = ("emissivity", "surroundings")
+        self._tell_missing(term, "radiation", keys, " and ".join(keys), term.values)
         if not emissivity or not surroundings:
             return None
         figures = {"emissivity": emissivity, "temperature": surroundings}

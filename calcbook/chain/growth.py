@@ -201,11 +201,9 @@ def _lay_out(
 ) -> tuple[str, tuple[ChainCheck, ...]] | None:
     """A card's steps on figures by quantity name: the id of its result, called by its name, and its limits."""
     film = FilmScope(scope, library, term, term.name, figures)
-    names = film.bind_needs(program)
+    names = film.laid_out(program)
     if names is None:
         return None
-    film.lay_out(program, names)
-    scope.cards |= {f"method {card.id}": card.digest_text for card in program.cards}
     name = names[program.result]
     scope.steps[name] = replace(scope.steps[name], title=result, kind=vocabulary()[result])
     return name, film.checks(program, names)

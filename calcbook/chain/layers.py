@@ -246,11 +246,9 @@ class Layers:
             "wall conductivity": conductivity,
         }
         film = FilmScope(scope, self.library, term, term.name, figures)
-        names = film.bind_needs(program)
+        names = film.laid_out(program)
         if names is None:
             return None
-        film.lay_out(program, names)
-        scope.cards |= {f"method {card.id}": card.digest_text for card in program.cards}
         resistance = names[program.result]
         steps = film.ancestors([resistance])
         own = tuple(step for step in steps if step.owner == term.name)

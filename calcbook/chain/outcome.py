@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import NamedTuple
 
 from calcbook.chain.flips_outcome import Flips
@@ -226,6 +226,10 @@ class Solved:
     @property
     def base(self) -> CaseOutcome:
         return self.cases[0]
+
+    def with_base(self, base: CaseOutcome) -> Solved:
+        """The calculation with another base case, its named cases as they are."""
+        return replace(self, cases=(base, *self.cases[1:]))
 
     @property
     def open_items(self) -> tuple[OpenItem, ...]:

@@ -216,12 +216,6 @@ def _solve(
         for place, condition in enumerate(CONDITIONS):
             samples.unknowns[place][:, samples.solved] = solutions[condition].unknowns
     ends = end_states(chain, inputs, solutions, thorough=False)
-    for state in ends if ends_close else ():
-        samples.mark(
-            ~state.solution.converged,
-            f"{OPEN_CIRCUIT} {state.place}, {state.solution.condition}",
-            samples.solved,
-        )
     samples.results = result_figures(chain, solutions) | surfaces_at_ends(ends)
     if any(name.startswith(LARGEST_ALLOWANCE) for name in _results_asked(chain)):
         samples.results |= allowance_figures(chain, inputs, solutions[SERVICE], thorough=False)
@@ -250,6 +244,9 @@ def _solve(
             why = f"{OPEN_CIRCUIT}: {branch.stream} has no {name} at the other side's temperature"
             samples.mark(open_circuit & missing, why, samples.solved)
         samples.mark(open_circuit, OPEN_CIRCUIT, samples.solved)
+    for state in ends if ends_close else ():
+        why = f"{OPEN_CIRCUIT} {state.place}, {state.solution.condition}"
+        samples.mark(~state.solution.converged, why, samples.solved)
 
 
 def _results_asked(chain: Chain) -> Iterator[str]:

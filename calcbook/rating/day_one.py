@@ -20,7 +20,7 @@ from calcbook.chain.completing import completed
 from calcbook.chain.duty import OWNER as DUTY
 from calcbook.chain.duty import PASSES
 from calcbook.chain.ends import closed_ends, end_checks, end_states
-from calcbook.chain.findings import ending_properties, wall_checks
+from calcbook.chain.findings import lacking_property, wall_checks
 from calcbook.chain.outcome import CheckResult, CriterionResult, Solved
 from calcbook.chain.plausible import band_checks
 from calcbook.chain.rating_outcome import WITH_ALLOWANCES, DayOne, SideState, UnitState
@@ -66,8 +66,10 @@ def day_one(solved: Solved) -> DayOne | str | None:
     for name, solution in solutions.items():
         if not bool(np.all(solution.converged)):
             which = "the clean unit" if name == CLEAN else "the unit with its allowances"
-            why = _lacking(states[name][0], solution)
-            return f"the circuit of {which} does not close at the inlets of the duty{why}"
+            why = lacking_property(states[name][0], solution)
+            return f"the circuit of {which} does not close at the inlets of the duty" + (
+                f": {why}" if why else ""
+            )
     clean, in_service = solutions[CLEAN], solutions[SERVICE]
     turned_down, reason, judged = _turned_down(solved)
     with_allowances = tuple(
@@ -120,19 +122,6 @@ def _with_inlet(solved: Solved, name: str, side: DutySide) -> DutySide:
     return replace(
         side, inlet=Value(text, side.place, quantity=read_any(text), source="found", has_source=True)
     )
-
-
-def _lacking(chain: Chain, solution: Solution) -> str:
-    """What a fluid lacks at the temperature of the other side, which explains that a circuit does not close."""
-    for branch, _, name, missing in ending_properties(chain, solution):
-        if bool(np.all(missing)):
-            return f": {branch.stream} has no {name} at the temperature of the other side"
-    return ""
-
-
-def _solution(chain: Chain, inputs: Mapping[str, Array], condition: str) -> Solution | None:
-    solution = solve(chain, inputs, condition)
-    return solution if bool(np.all(solution.converged)) else None
 
 
 # --- turned down --------------------------------------------------------------------------------------

@@ -57,7 +57,7 @@ def over_time(solved: Solved) -> Solved:
         card = solved.chain.library.method(table.interval.closed_form.card)
         used[f"method {card.id}"] = card.digest_text
     base = replace(solved.base, results={**solved.base.results, **_results(table)})
-    return replace(solved, over_time=table, cards=used, cases=(base, *solved.cases[1:]))
+    return replace(solved.with_base(base), over_time=table, cards=used)
 
 
 def _results(table: OverTime) -> dict[str, Result]:

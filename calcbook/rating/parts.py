@@ -61,8 +61,7 @@ def with_parts(solved: Solved, along: Parts) -> Solved:
     items = list(base.open_items)
     if along.spread > U_SPREAD or (margin < 0.0) != (single < 0.0):
         items.append(OpenItem("duty / parts", "check", _misled(along, margin, single)))
-    base = replace(base, results={**base.results, **results}, open_items=tuple(items))
-    return replace(solved, cases=(base, *solved.cases[1:]))
+    return solved.with_base(replace(base, results={**base.results, **results}, open_items=tuple(items)))
 
 
 def _misled(along: Parts, margin: float, single: float) -> str:

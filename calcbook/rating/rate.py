@@ -22,10 +22,6 @@ def rated(solved: Solved) -> Solved:
     rating = Rating(rows, sum(row.area for row in rows), along, day, reason)
     solved = replace(solved, rating=rating)
     if reason:
-        solved = _with_open_item(solved, OpenItem("day one", "check", f"Day one has no answer: {reason}."))
+        item = OpenItem("day one", "check", f"Day one has no answer: {reason}.")
+        solved = solved.with_base(replace(solved.base, open_items=(*solved.base.open_items, item)))
     return with_parts(solved, along) if along is not None else solved
-
-
-def _with_open_item(solved: Solved, item: OpenItem) -> Solved:
-    base = replace(solved.base, open_items=(*solved.base.open_items, item))
-    return replace(solved, cases=(base, *solved.cases[1:]))

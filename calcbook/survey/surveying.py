@@ -69,9 +69,7 @@ def surveyed(solved: Solved, collector: Collector) -> Solved | None:
         checks=(*solved.base.checks, *checks),
         open_items=(*solved.base.open_items, *work.open_items(outcome), *work.limit_items(checks)),
     )
-    return replace(
-        solved, cases=(base, *solved.cases[1:]), cards={**solved.cards, **work.cards()}, survey=outcome
-    )
+    return replace(solved.with_base(base), cards={**solved.cards, **work.cards()}, survey=outcome)
 
 
 @dataclass(frozen=True)

@@ -212,8 +212,9 @@ def _correlations(
 ) -> dict[frozenset[str], float]:
     """The stated coefficients by pairs of ids; faults where one has nothing to stand on."""
     known = {figure.line.symbol for figure in figures}
+    stated = asked.correlations if asked is not None else ()
     found: dict[frozenset[str], float] = {}
-    for one in asked.correlations if asked is not None else ():
+    for one in stated:
         for symbol in (one.first, one.second):
             if symbol not in known:
                 collector.add(
@@ -224,22 +225,16 @@ def _correlations(
                     expected="a tolerance on both givens",
                 )
         found[frozenset((f"given/{one.first}", f"given/{one.second}"))] = one.coefficient
-    if asked is None or not found or not known.issuperset(_correlated(asked)):
-        return found
-    if not is_possible(correlation_matrix([figure.id for figure in figures], found)):
+    named = {symbol for one in stated for symbol in (one.first, one.second)}
+    if named and named <= known and not is_possible(correlation_matrix([one.id for one in figures], found)):
         collector.add(
             "correlation-impossible",
-            asked.correlations[0].place,
+            stated[0].place,
             "these correlations cannot all hold together",
             found="a matrix of coefficients that is not positive semidefinite",
             expected="coefficients that agree with each other",
         )
     return found
-
-
-def _correlated(asked: UncertaintyText) -> set[str]:
-    """The symbols that correlations are stated of."""
-    return {symbol for one in asked.correlations for symbol in (one.first, one.second)}
 
 
 class _Assessment:

@@ -15,6 +15,7 @@ import sys
 import tempfile
 import time
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 
@@ -86,8 +87,8 @@ def searched_samples(path: Path) -> int:
     """How many samples the search for distances to flip solves in one calculation."""
     found: list[int] = []
 
-    def counted(*arguments: object) -> Samples:
-        samples = evaluate_samples(*arguments)  # type: ignore[arg-type]
+    def counted(*arguments: Any) -> Samples:
+        samples = evaluate_samples(*arguments)
         found.append(len(samples.solved))
         return samples
 

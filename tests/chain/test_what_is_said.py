@@ -48,12 +48,9 @@ def test_freezing_at_the_wall_is_said_to_be_unchecked_for_a_liquid_without_a_fre
 def test_a_stated_coefficient_that_a_case_leaves_as_it_is_is_said(tmp_path: Path) -> None:
     kept = said(example("wc-101"))["shell-side film/kept in winter"]
     assert "though T_cold is another there" in kept
-    restated = (
-        "T_cold: {value: 12 degC,",
-        "h_o: {value: 4540 W/(m^2 K), source: vendor},\n    T_cold: {value: 12 degC,",
-    )
-    written = restated[0], restated[1].replace("},\n", "}\n")
-    assert "shell-side film/kept in winter" not in said(changed(tmp_path, "wc-101", written))
+    winter = "T_cold: {value: 12 degC,"
+    restated = (winter, f"h_o: {{value: 4540 W/(m^2 K), source: vendor}}\n    {winter}")
+    assert "shell-side film/kept in winter" not in said(changed(tmp_path, "wc-101", restated))
     scaled = ("temperature: T_cold}", "temperature: T_cold, scales with: T_cold/T_cold}")
     assert "shell-side film/kept in winter" not in said(changed(tmp_path, "wc-101", scaled))
 
