@@ -435,7 +435,7 @@ class _Assessment:
             count = found.marks.get(name, 0)
             if not count:
                 continue
-            nominal = states.get((one.id, one.condition), "its method is not used")
+            nominal = states.get((one.id, one.condition), one.not_listed)
             key = (one.id, count, nominal)
             # What has nothing to do with deposits is left by the same samples in both conditions: one row.
             where = f"{rows[key].condition} and {one.condition}" if key in rows else one.condition

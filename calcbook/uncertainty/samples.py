@@ -11,7 +11,7 @@ import numpy as np
 from calcbook.chain.about_state import about_state
 from calcbook.chain.checks import NOT_EVALUABLE, OUTSIDE, check_states
 from calcbook.chain.completing import completed
-from calcbook.chain.ends import PLACES, end_states, has_ends
+from calcbook.chain.ends import OPEN_END, PLACES, end_states, has_ends
 from calcbook.chain.findings import ends_of, figures_to_hold, has_phase_to_keep
 from calcbook.chain.measured import Measured, condition_of
 from calcbook.chain.samples import Samples, mark_derived, mark_directions, mark_walls
@@ -24,6 +24,8 @@ from calcbook.uncertainty.sampling import Sampled
 Array = np.ndarray
 COMPARISONS = {">=": np.greater_equal, "<=": np.less_equal, ">": np.greater, "<": np.less}
 OUTSIDE_ANY = "outside a limit"
+# How a limit stands at the stated values that the record does not list.
+NO_METHOD = "its method is not used"
 # So few samples take longer to be told apart than to be solved: all their figures are kept.
 FEW = 500
 
@@ -50,6 +52,7 @@ class Watched:
     """A limit to be watched in one condition, for the samples whose film uses the method that has it."""
 
     place: ClassVar[str] = ""
+    not_listed: ClassVar[str] = NO_METHOD
 
     check: ChainCheck
     condition: str
@@ -88,6 +91,8 @@ class WallPhase:
     ``place`` is the end of the unit, empty for the mean temperatures.
     """
 
+    not_listed: ClassVar[str] = NO_METHOD
+
     owner: str
     name: str
     condition: str
@@ -118,7 +123,27 @@ class WallPhase:
         return np.asarray(np.minimum.reduce(sides) <= end)
 
 
-Limited = Watched | WallPhase
+@dataclass(frozen=True, slots=True)
+class EndCircuit:
+    """That the circuit closes at an end of the unit in one condition."""
+
+    level: ClassVar[str] = "range"
+    not_listed: ClassVar[str] = "within"
+    needs: ClassVar[frozenset[str]] = frozenset()
+
+    condition: str
+    place: str
+
+    @property
+    def id(self) -> str:
+        return f"{OPEN_END} {self.place}"
+
+    def outside(self, solution: Solution) -> Array:
+        """The samples in which it does not close."""
+        return ~solution.converged
+
+
+Limited = Watched | WallPhase | EndCircuit
 
 
 def wall_phases(chain: Chain, solution: Solution, condition: str) -> list[WallPhase]:
@@ -260,7 +285,8 @@ class ChainModel:
         for condition in self.conditions if limits else ():
             walls = wall_phases(chain, base[condition], condition)
             places = PLACES if has_ends(chain) else ()
-            at_ends = [replace(wall, place=place) for wall in walls for place in places]
+            at_ends: list[Limited] = [replace(wall, place=place) for wall in walls for place in places]
+            at_ends += [EndCircuit(condition, place) for place in places]
             self.limits = (*self.limits, *watched(chain, condition), *walls, *at_ends)
         self.keep = {
             *(step for one in wanted for _, step in one.parts.values()),
@@ -342,8 +368,8 @@ class ChainModel:
         for one in self.limits:
             solution = ends[f"{one.condition} {one.place}"] if one.place else solutions[one.condition]
             outside = np.broadcast_to(one.outside(solution), (size,))
-            if one.place:
-                # Where the circuit does not close at an end nothing is known of it, as in a record.
+            if isinstance(one, WallPhase) and one.place:
+                # Where the circuit does not close at an end nothing is known of its walls: that is a limit of its own.
                 outside = outside & solution.converged
             if one.level == "stop":
                 possible = possible & ~outside
