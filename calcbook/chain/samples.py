@@ -23,7 +23,7 @@ from calcbook.chain.checks import (
     within_bound,
 )
 from calcbook.chain.completing import completed
-from calcbook.chain.ends import EndState, end_states, id_at
+from calcbook.chain.ends import OPEN_END, EndState, end_states, id_at
 from calcbook.chain.figures import ResultFigures, allowance_figures, result_figures, surfaces_at_ends
 from calcbook.chain.findings import (
     WallLimit,
@@ -65,8 +65,8 @@ Margins = Callable[[], list[Array]]
 # A sample at which there is no verdict: the limit is not there, cannot be evaluated, or the result is not known.
 NO_VERDICT = -1
 MET_WORDS = ("met", "not met")
-LIMIT_WORDS = ("within", "outside", "accepted", "not counting")
-HELD, BROKEN, ACCEPTED, IDLE = range(len(LIMIT_WORDS))
+LIMIT_WORDS = ("within", "outside", "accepted", "not counting", "not evaluable")
+HELD, BROKEN, ACCEPTED, IDLE, OPEN = range(len(LIMIT_WORDS))
 # From the places of the states of a single limit.
 _CODE_OF_STATE = np.array([HELD, BROKEN, NO_VERDICT, IDLE])
 NO_CONTROLLING = "no controlling term"
@@ -319,11 +319,17 @@ class _Limits:
                     for item in wall_limits(state.chain, state.solution):
                         acts = item.acts & state.solution.converged
                         _put_wall(limits, id_at(item.id, state), item, acts)
+                    limits[id_at(OPEN_END, state)] = self._circuit(state)
             for name, limit in limits.items():
                 if (limit.codes != NO_VERDICT).any():
                     codes = self._with_acceptances(name, limit, condition)
                     margins = _joined(limit.margins)
                     yield Verdicts(LIMIT, name, condition, LIMIT_WORDS, codes, margins, limit.level)
+
+    def _circuit(self, state: EndState) -> _Limit:
+        """That the circuit closes at an end: what it does at the walls there is not known otherwise."""
+        closes = np.broadcast_to(state.solution.converged, self.case_of.shape)
+        return _Limit("range", np.where(closes, HELD, OPEN), np.full(closes.shape, np.nan), [])
 
     def _cards(self, found: _Found) -> None:
         """As in a record: the shared limits, those of each element, those of what each sample chose."""
@@ -365,7 +371,7 @@ class _Limits:
             if item.bound is not None:
                 bound = (item.bound.quantity or read_any(item.bound.text)).value
                 held = within_bound(item.direction, bound, limit.figure)
-                codes = np.where(applies & held & (codes == BROKEN), ACCEPTED, codes)
+                codes = np.where(applies & held & np.isin(codes, (BROKEN, OPEN)), ACCEPTED, codes)
                 limit.margins.append(_fixed_margins(limit.figure - bound))
         return codes
 

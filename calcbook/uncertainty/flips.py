@@ -26,6 +26,7 @@ from calcbook.chain.samples import (
     BROKEN,
     IDLE,
     NO_VERDICT,
+    OPEN,
     Samples,
     Verdicts,
     evaluate_samples,
@@ -387,7 +388,8 @@ class _Search:
         codes = codes[rows]
         base = codes[:, :1]
         other = (codes != base) & (codes >= 0) & (base >= 0)
-        counts = (codes != IDLE) & ((base != IDLE) | (codes == BROKEN))
+        # What cannot be evaluated as it stands is an open item, and hides no other limit here.
+        counts = (codes != IDLE) & ((base != IDLE) | (codes == BROKEN)) & (base != OPEN)
         other &= counts | ~self.table.limit_rows[rows, None]
         if codes.shape[1] > end:
             other[:, end] &= self.table.stop_rows[rows] & (codes[:, end] == BROKEN)

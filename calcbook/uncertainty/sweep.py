@@ -9,7 +9,7 @@ from calcbook.chain.analysis import is_found_later
 from calcbook.chain.figures import ResultFigures
 from calcbook.chain.flips_outcome import LIMIT
 from calcbook.chain.outcome import Result, Solved
-from calcbook.chain.samples import BROKEN, Samples, evaluate_samples, phases_of
+from calcbook.chain.samples import BROKEN, OPEN, Samples, evaluate_samples, phases_of
 from calcbook.chain.sweep_outcome import Axis, Sweep, SweptResult
 from calcbook.chain.types import Chain, Input
 from calcbook.faults import Collector, Place, nearest_names, shown
@@ -112,6 +112,7 @@ def _outside(samples: Samples) -> tuple[tuple[str, ...], ...]:
     found: list[list[str]] = [[] for _ in samples.missing]
     for verdict in samples.verdicts.values():
         if verdict.kind == LIMIT and verdict.level == "range":
-            for place in np.flatnonzero((samples.codes(verdict.key) == BROKEN) & (samples.missing == 0)):
+            left = np.isin(samples.codes(verdict.key), (BROKEN, OPEN))
+            for place in np.flatnonzero(left & (samples.missing == 0)):
                 found[place].append(f"{verdict.id}, {verdict.condition}")
     return tuple(tuple(names) for names in found)

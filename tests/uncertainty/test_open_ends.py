@@ -7,8 +7,10 @@ from pathlib import Path
 import numpy as np
 
 from calcbook.chain.ends import OPEN_END
+from calcbook.chain.flips_outcome import LIMIT
 from calcbook.chain.measured import measured
 from calcbook.chain.outcome import Solved
+from calcbook.chain.samples import evaluate_samples
 from calcbook.interface import solve_file
 from calcbook.uncertainty.samples import OUTSIDE_ANY, ChainModel
 
@@ -75,3 +77,29 @@ def test_drawn_samples_count_an_end_that_does_not_close(tmp_path: Path) -> None:
     assert sampled.marks[OUTSIDE_ANY].tolist() == [False, True]
     # U stands at the means, where both close.
     assert np.isfinite(sampled.outputs["U_clean"]).all()
+
+
+def test_a_sweep_names_an_end_that_does_not_close(tmp_path: Path) -> None:
+    swept = f"sweep:\n  of: [U_clean]\n  T_ci: {{from: {WARM} degC, to: {ICY} degC, steps: 2}}\n"
+    answer = solved(tmp_path, WARM, swept, for_record=True)
+    assert answer.sweep.missing == ("", "")
+    assert [f"{CIRCUIT}, clean" in outside for outside in answer.sweep.outside] == [False, True]
+
+
+def test_an_end_that_is_open_as_it_stands_hides_no_flip(tmp_path: Path) -> None:
+    """The clean circuit would close again in glycol of −13 °C, which is nearer than where the margin is lost."""
+    answer = solved(tmp_path, ICY, for_record=True)
+    limits = answer.flips.of_kind(LIMIT)
+    assert not any(flip.was == "not evaluable" for flip in limits)
+    warmer = next(flip for flip in limits if flip.input.symbol == "T_ci")
+    assert (warmer.id, warmer.becomes) == ("duty / area / margin", "outside")
+
+
+def test_verdicts_of_samples_at_an_open_end_are_those_of_the_record(tmp_path: Path) -> None:
+    chain = solved(tmp_path, WARM).chain
+    inputs = {name: np.asarray(value) for name, value in chain.case_inputs("").items()}
+    samples = evaluate_samples(chain, {**inputs, "given/T_ci": np.array([WARM, ICY]) + 273.15})
+    verdict = samples.verdicts[LIMIT, CIRCUIT, "clean"]
+    assert [verdict.words[code] for code in samples.codes(verdict.key)] == ["within", "not evaluable"]
+    (check,) = (one for one in solved(tmp_path, ICY).base.checks if one.id == CIRCUIT)
+    assert (check.condition, check.state) == ("clean", "not evaluable")
