@@ -637,6 +637,24 @@ class _WallFacts:
     freezing: float
 
 
+def phases_not_checked(chain: Chain, solution: Solution) -> dict[str, tuple[str, ...]]:
+    """The streams of films that are, or may be, liquids, of which boiling or freezing at the wall is not checked."""
+    checked = {
+        (item.owner, item.name) for item in wall_limits(chain, solution) if np.isfinite(item.limit).all()
+    }
+    found: dict[str, list[str]] = {"boiling": [], "freezing": []}
+    for branch in (branch for group in (chain.inner, chain.outer) for branch in group.branches):
+        state = chain.streams.get(branch.stream)
+        if state is None or stream_phases(state, solution.values)[0][0][0] == "gas":
+            continue
+        means_to_change = branch.situation is not None and branch.situation.changes_phase
+        if not means_to_change and (branch.name, "boils") not in checked:
+            found["boiling"].append(branch.stream)
+        if (branch.name, "freezes") not in checked:
+            found["freezing"].append(branch.stream)
+    return {change: tuple(dict.fromkeys(names)) for change, names in found.items() if names}
+
+
 def lacks_vapour_pressure(state: StreamState) -> bool:
     """Whether boiling of a fluid at the wall cannot be checked."""
     return state.fluid.text.kind not in ("name", "humid air")

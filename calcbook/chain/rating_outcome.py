@@ -66,7 +66,8 @@ class DayOne(NamedTuple):
 
     ``service`` is the unit with its allowances. ``turned_down`` is None with the reason in ``no_turn_down``.
     ``checks`` are phases at the wall and figures outside their bands, in the state that ``condition`` names;
-    ``criteria`` are those of the file on temperatures of the clean unit, in the state that their case names.
+    ``criteria`` are those of the file on temperatures of the clean unit, in the state that their case names;
+    ``not_checked`` are the streams of which boiling or freezing at the wall cannot be checked.
     """
 
     service: UnitState
@@ -75,6 +76,7 @@ class DayOne(NamedTuple):
     no_turn_down: str
     checks: tuple[CheckResult, ...]
     criteria: tuple[CriterionResult, ...]
+    not_checked: Mapping[str, tuple[str, ...]]
 
     @property
     def hotter(self) -> float:

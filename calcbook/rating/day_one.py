@@ -20,7 +20,7 @@ from calcbook.chain.completing import completed
 from calcbook.chain.duty import OWNER as DUTY
 from calcbook.chain.duty import PASSES
 from calcbook.chain.ends import closed_ends, end_checks, end_states
-from calcbook.chain.findings import lacking_property, wall_checks
+from calcbook.chain.findings import lacking_property, phases_not_checked, wall_checks
 from calcbook.chain.outcome import CheckResult, CriterionResult, Solved
 from calcbook.chain.plausible import band_checks
 from calcbook.chain.rating_outcome import WITH_ALLOWANCES, DayOne, SideState, UnitState
@@ -85,6 +85,7 @@ def day_one(solved: Solved) -> DayOne | str | None:
         reason,
         with_allowances + as_it_runs.checks + judged.checks,
         as_it_runs.criteria + judged.criteria,
+        phases_not_checked(clean_chain, clean),
     )
 
 

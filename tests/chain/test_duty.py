@@ -321,6 +321,17 @@ def test_day_one_is_the_clean_unit_with_open_outlets(tmp_path: Path) -> None:
     assert figure(turned, "T_hot_outlet") == pytest.approx(39.4 + 273.15, abs=1e-6)
 
 
+def test_day_one_says_what_is_not_checked_of_fluids_of_stated_properties(tmp_path: Path) -> None:
+    """Four constants tell neither a vapour pressure nor a freezing point of either liquid."""
+    answer = solved(tmp_path, fouling="0.0001 m^2 K/W", length="900 m")
+    told = record_text(answer).partition("### Day one")[2].partition("\n## ")[0]
+    for words in (
+        "Not checked is boiling of hot, cold at the wall: no vapour pressure, or no pressure of the stream, is known.",
+        "Not checked is freezing of hot, cold at the wall: no freezing point, or no pressure of the stream, is known.",
+    ):
+        assert words in told
+
+
 def test_a_stated_film_that_knows_no_flow_is_not_turned_down() -> None:
     day = solve_file(RATED).rating.day_one
     assert day is not None and day.turned_down is None

@@ -26,6 +26,11 @@ from calcbook.record.sections.validity import verdict
 
 # A surface this much hotter than in service is told, K: common practice.
 HOTTER = 2.0
+# Why a change of phase at the wall is not checked.
+NOT_CHECKED = {
+    "boiling": "no vapour pressure, or no pressure of the stream, is known",
+    "freezing": "no freezing point, or no pressure of the stream, is known",
+}
 
 
 def brief_rows(page: Page) -> list[tuple[str, str, str]]:
@@ -325,6 +330,10 @@ def day_one_blocks(page: Page) -> list[Block]:
                 " usual window is held in these states."
             )
         )
+    blocks += [
+        Paragraph(f"Not checked is {change} of {', '.join(names)} at the wall: {NOT_CHECKED[change]}.")
+        for change, names in day.not_checked.items()
+    ]
     if day.criteria:
         columns = tuple("State" if name == "Case" else name for name in CRITERION_COLUMNS)
         blocks += [
