@@ -139,12 +139,14 @@ def end_checks(states: tuple[EndState, ...], case: str) -> list[CheckResult]:
 
     Of an end at which the circuit does not close nothing of that is known, which is a limit of its own.
     """
-    found = [
-        check._replace(id=id_at(check.id, state))
-        for state in closed_ends(states)
-        for check in wall_checks(state.chain, case, state.solution)
-    ]
-    return found + [_open_end(state, case) for state in states if not _closes(state)]
+    found = []
+    for state in states:
+        solution = state.solution.sample(0)
+        why = "" if _closes(state) else _why_open(state.chain, solution)
+        found += [_open_end(state, case, why)] if why else []
+        checks = wall_checks(state.chain, case, solution, why)
+        found += [check._replace(id=id_at(check.id, state)) for check in checks]
+    return found
 
 
 def _closes(state: EndState) -> bool:
@@ -152,17 +154,20 @@ def _closes(state: EndState) -> bool:
     return bool(state.solution.converged.reshape(-1)[0])
 
 
-def _open_end(state: EndState, case: str) -> CheckResult:
-    solution = state.solution.sample(0)
-    why = lacking_property(state.chain, solution)
+def _why_open(chain: Chain, solution: Solution) -> str:
+    lacking = lacking_property(chain, solution)
+    return "the circuit does not close" + (f"; {lacking}" if lacking else "")
+
+
+def _open_end(state: EndState, case: str, why: str) -> CheckResult:
     return CheckResult(
         id_at(OPEN_END, state),
         "duty",
         "wall phase",
-        solution.condition,
+        state.solution.condition,
         case,
         "the circuit closes",
-        "the circuit does not close" + (f"; {why}" if why else ""),
+        why,
         "the circuit closes",
         math.nan,
         "1",

@@ -495,19 +495,21 @@ class WallLimit:
         return np.where(np.isfinite(self.limit), np.where(self.margin > 0.0, WITHIN, OUTSIDE), NOT_EVALUABLE)
 
 
-def wall_checks(chain: Chain, case: str, solution: Solution) -> list[CheckResult]:
-    """Against boiling, condensing and freezing at every wetted surface of a film or gap with a fluid."""
-    return [_wall_check(item, case, solution.condition) for item in wall_limits(chain, solution)]
+def wall_checks(chain: Chain, case: str, solution: Solution, why_open: str = "") -> list[CheckResult]:
+    """Against boiling, condensing and freezing at every wetted surface of a film or gap with a fluid.
+
+    ``why_open`` is why the circuit does not close: its surfaces are not known then.
+    """
+    return [_wall_check(item, case, solution.condition, why_open) for item in wall_limits(chain, solution)]
 
 
-def _wall_check(item: WallLimit, case: str, condition: str) -> CheckResult:
+def _wall_check(item: WallLimit, case: str, condition: str, why_open: str) -> CheckResult:
     surface, limit = float(item.surface.ravel()[0]), float(item.limit.ravel()[0])
-    state = STATES[int(item.states.ravel()[0])]
+    state = STATES[NOT_EVALUABLE if why_open else int(item.states.ravel()[0])]
     known = math.isfinite(limit)
+    beside = () if why_open else (surface - ICE_POINT,)
     limit_text = (
-        f"{item.sign} {apart(limit - ICE_POINT, (surface - ICE_POINT,), 4)} °C"
-        if known
-        else "not known without a pressure"
+        f"{item.sign} {apart(limit - ICE_POINT, beside, 4)} °C" if known else "not known without a pressure"
     )
     return CheckResult(
         item.id,
@@ -516,9 +518,9 @@ def _wall_check(item: WallLimit, case: str, condition: str) -> CheckResult:
         condition,
         case,
         item.that,
-        f"T_s = {apart(surface - ICE_POINT, ((limit if known else 0.0) - ICE_POINT,), 4)} °C",
+        why_open or f"T_s = {apart(surface - ICE_POINT, ((limit if known else 0.0) - ICE_POINT,), 4)} °C",
         limit_text,
-        surface,
+        math.nan if why_open else surface,
         "K",
         "range",
         state,
