@@ -17,6 +17,10 @@ from calcbook.quantities import DIMENSIONLESS
 if TYPE_CHECKING:
     from calcbook.calcfile.reading import Reader
 
+# Of five blocks of 10,000 samples, in all of which a criterion holds, 3/N of others can be left at 95 % confidence: a
+# larger share than this cannot be shown.
+MOST_PROBABILITY = 0.9999
+
 
 def read_acceptance(reader: Reader) -> tuple[Criterion, ...]:
     """The acceptance criteria of the file, in its order."""
@@ -38,13 +42,13 @@ def _probability(reader: Reader, fields: Fields) -> float:
     quantity = reader.quantity(scalar) if scalar is not None else None
     if scalar is None or quantity is None:
         return math.nan
-    if quantity.dimension != DIMENSIONLESS or not 0.0 < quantity.value < 1.0:
+    if quantity.dimension != DIMENSIONLESS or not 0.0 < quantity.value <= MOST_PROBABILITY:
         reader.collector.add(
             "number-unreadable",
             scalar.place,
             "this is no probability that a criterion could hold with",
             found=shown(scalar.text),
-            expected="a share above 0 and below 100 %, such as 95 %",
+            expected="a share above 0 and not above 99.99 %, the most that samples can show, such as 95 %",
         )
         return math.nan
     if "uncertainty" not in reader.fields:

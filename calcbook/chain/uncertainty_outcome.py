@@ -115,7 +115,8 @@ class SampledResult(NamedTuple):
 class Chance(NamedTuple):
     """How often a statement holds, as a share of all samples, with the standard deviation of that share.
 
-    A sample without an answer is one in which it does not hold; ``unanswered`` is the share of those.
+    A sample without an answer is one in which it does not hold; ``unanswered`` is the share of those. ``required`` is
+    the share that is asked for, NaN where none is.
     """
 
     id: str
@@ -124,6 +125,7 @@ class Chance(NamedTuple):
     probability: float
     deviation: float
     unanswered: float
+    required: float
 
 
 class CaseChance(NamedTuple):
@@ -149,12 +151,14 @@ class Sampling(NamedTuple):
 
     ``unanswered`` samples have no result (no solution, a figure that cannot be, or outside a limit that
     stops); ``outside`` counts the limits that the others leave; ``outside_any`` the samples that leave one.
+    Where not ``is_answered``, fewer than half of the samples of a block have one: no result has figures then.
     """
 
     trials: int
     blocks: int
     block_size: int
     is_capped: bool
+    is_answered: bool
     results: tuple[SampledResult, ...]
     chances: tuple[Chance, ...]
     not_sampled: tuple[str, ...]

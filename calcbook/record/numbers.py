@@ -79,6 +79,27 @@ def percent(ratio: float, places: int = 1) -> str:
     return f"{fixed(ratio * 100.0, places)} %" if math.isfinite(ratio) else NOT_KNOWN
 
 
+def share_places(share: float, asked: float = math.nan) -> int:
+    """The decimal places of a share in per cent: two, and as many more as show on which side of the one asked for it
+    lies, and that it is neither none nor all."""
+    marks = [100.0 * mark for mark in (0.0, 1.0, asked) if mark != share]
+    for places in range(2, MOST_DIGITS):
+        shown = parse_number(fixed(100.0 * share, places))
+        if all(math.isnan(mark) or (shown - mark) * (100.0 * share - mark) > 0.0 for mark in marks):
+            return places
+    return MOST_DIGITS
+
+
+def share_text(share: float, asked: float = math.nan) -> str:
+    """A share of samples in per cent, with the places that ``share_places`` finds."""
+    return percent(share, share_places(share, asked))
+
+
+def asked_text(asked: float) -> str:
+    """A share that is asked for in per cent, with no figure of it rounded away."""
+    return f"{number(float(f'{100.0 * asked:.{AS_GIVEN_DIGITS}g}'), AS_GIVEN_DIGITS)} %"
+
+
 def report_unit(kind: QuantityKind, report: Report) -> str:
     """The unit that results of a kind are reported in, as unit text."""
     if kind.name in report.quantity_units:

@@ -6,6 +6,7 @@ from collections.abc import Iterator
 
 from calcbook.chain.uncertainty_outcome import Budget, Chance, SampledResult, Sampling, Uncertainty
 from calcbook.record.data import Data, rounded
+from calcbook.record.numbers import share_places
 
 
 def uncertainty_data(found: Uncertainty) -> Data:
@@ -58,7 +59,7 @@ def displayed_uncertainty(found: Uncertainty) -> Iterator[tuple[str, list[str]]]
     for one in found.chances:
         yield (
             f"uncertainty samples {one.chance.id} in {one.case or 'base'}",
-            [f"{one.chance.probability:.4f}", "1"],
+            [_displayed(one.chance), "1"],
         )
     if found.sampling is None:
         return
@@ -66,7 +67,12 @@ def displayed_uncertainty(found: Uncertainty) -> Iterator[tuple[str, list[str]]]
         yield f"uncertainty samples {result.result} / standard", [f"{result.standard:.2g}", result.kind.unit]
         yield f"uncertainty samples {result.result} / first order", [result.verdict, ""]
     for chance in found.sampling.chances:
-        yield f"uncertainty samples {chance.id}", [f"{chance.probability:.4f}", "1"]
+        yield f"uncertainty samples {chance.id}", [_displayed(chance), "1"]
+
+
+def _displayed(chance: Chance) -> str:
+    """A probability with the digits that the record shows of it."""
+    return f"{chance.probability:.{share_places(chance.probability, chance.required) + 2}f}"
 
 
 def _budget(budget: Budget) -> Data:

@@ -17,7 +17,15 @@ from calcbook.documents import Mapping as MappingNode
 from calcbook.documents import Sequence as ListNode
 from calcbook.faults import Fault, Faults, Place, nearest_names, shown
 from calcbook.quantities import QuantityKind
-from calcbook.record.numbers import PLAIN_DIGITS, apart, percent, report_unit, unit_text, with_unit
+from calcbook.record.numbers import (
+    PLAIN_DIGITS,
+    apart,
+    asked_text,
+    report_unit,
+    share_text,
+    unit_text,
+    with_unit,
+)
 from calcbook.revisions.attribution import Attribution, attribute
 from calcbook.revisions.changes import Change, changes_between, entries_of, merged
 from calcbook.revisions.mixtures import woven
@@ -291,7 +299,9 @@ def _against(item: CriterionResult | None, report: Report) -> str:
     held = (
         ""
         if math.isnan(item.reached)
-        else (f"; holds with {percent(item.reached)}, {percent(item.required)} is asked for")
+        else (
+            f"; holds with {share_text(item.reached, item.required)}, {asked_text(item.required)} is asked for"
+        )
     )
     return f"{item.words or value} against {with_unit(limit, unit_text(unit))}{held}"
 

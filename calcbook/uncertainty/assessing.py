@@ -366,19 +366,18 @@ class _Assessment:
         if not drawn:
             return None
         found = propagate(model, drawn, self.coverage, self.asked.digits, self.correlations)
-        if found is None:
-            return None
         return Sampling(
             found.trials,
             found.blocks,
             found.block_size,
             found.is_capped,
+            found.is_answered,
             tuple(
                 _compared(budget, interval)
                 for budget in budgets
-                if _is_moved(interval := found.intervals[budget.result])
+                if (interval := found.intervals.get(budget.result)) and _is_moved(interval)
             ),
-            tuple(_chance(one, texts[one.id], found) for one in statements),
+            tuple(_chance(name, said, found) for name, said in texts.items()),
             not_sampled,
             found.trials - found.answered,
             self._outside(model, found),
@@ -397,13 +396,14 @@ class _Assessment:
             if chance.id in wanted
         ]
 
-    def _statements(self) -> tuple[list[Statement], dict[str, tuple[str, bool]], tuple[str, ...]]:
+    def _statements(self) -> tuple[list[Statement], dict[str, tuple[str, bool, float]], tuple[str, ...]]:
         """What is counted over the samples: every criterion that they can show, and a margin above zero.
 
-        With it the text and the verdict at the stated values, by id, and the criteria that they cannot show.
+        With it the text, the verdict at the stated values and the share that is asked for, by id, and the criteria
+        that they cannot show.
         """
         statements: list[Statement] = []
-        texts: dict[str, tuple[str, bool]] = {}
+        texts: dict[str, tuple[str, bool, float]] = {}
         not_sampled = [item.text for item in self.chain.calculation.acceptance if is_found_later(item.result)]
         for row in self.case.criteria:
             item = self.chain.calculation.criterion(row.id)
@@ -414,12 +414,12 @@ class _Assessment:
             statements.append(
                 Statement(row.id, result, item.operator, row.limit, self._limit_step(item.limit.symbol))
             )
-            texts[row.id] = (row.that, row.met)
+            texts[row.id] = (row.that, row.met, item.probability)
         margin = measured(self.chain, MARGIN) if MARGIN in self.case.results else None
         said = any(one.result.name == MARGIN and one.limit == 0.0 for one in statements)
         if margin is not None and not said:
             statements.append(Statement(POSITIVE_MARGIN, margin, ">", 0.0))
-            texts[POSITIVE_MARGIN] = (POSITIVE_MARGIN, self._named(MARGIN).value > 0.0)
+            texts[POSITIVE_MARGIN] = (POSITIVE_MARGIN, self._named(MARGIN).value > 0.0, math.nan)
         return statements, texts, tuple(not_sampled)
 
     def _limit_step(self, symbol: str) -> str:
@@ -469,8 +469,10 @@ def _compared(budget: Budget, found: Interval) -> SampledResult:
     )
 
 
-def _chance(statement: Statement, text: tuple[str, bool], found: Propagated) -> Chance:
+def _chance(name: str, said: tuple[str, bool, float], found: Propagated) -> Chance:
     """How often a statement holds over all samples: of one without an answer nothing can be said to hold."""
-    share = found.marks[statement.id] / found.trials
+    share = found.marks[name] / found.trials
     deviation = math.sqrt(share * (1.0 - share) / found.trials)
-    return Chance(statement.id, text[0], text[1], share, deviation, 1.0 - found.answered / found.trials)
+    unanswered = 1.0 - found.answered / found.trials
+    text, nominal, required = said
+    return Chance(name, text, nominal, share, deviation, unanswered, required)

@@ -65,7 +65,10 @@ class Interval:
 
 @dataclass(frozen=True, slots=True)
 class Propagated:
-    """All outputs with the counts of marks. ``answered`` samples have a value of every output."""
+    """All outputs with the counts of marks. ``answered`` samples have a value of every output; marks count in no others.
+
+    ``is_answered`` is False where fewer than half of the samples of a block have one: no figure is made from the rest.
+    """
 
     intervals: Mapping[str, Interval]
     marks: Mapping[str, int]
@@ -74,6 +77,7 @@ class Propagated:
     blocks: int
     block_size: int
     is_capped: bool
+    is_answered: bool
 
 
 def block_size(coverage: float) -> int:
@@ -142,11 +146,9 @@ def propagate(
     correlations: Correlations | None = None,
     most_trials: int = MOST_TRIALS,
     together: int = MOST_TOGETHER,
-) -> Propagated | None:
-    """Draw blocks until every output is steady (JCGM 101:2008, 7.9), or until the most trials are drawn.
-
-    None where fewer than half of the samples have an answer: no figure is made from the rest.
-    """
+) -> Propagated:
+    """Draw blocks until every output is steady (JCGM 101:2008, 7.9), until the most trials are drawn, or until fewer
+    than half of the samples of a block have an answer."""
     return _Propagation(model, figures, coverage, digits, correlations or {}, most_trials, together).run()
 
 
@@ -169,31 +171,29 @@ class _Propagation:
         self.kept: dict[str, list[Array]] = {}
         self.of_blocks: dict[str, list[tuple[float, float, float, float]]] = {}
         self.marks: dict[str, int] = {}
-        self.blocks = 0
+        self.blocks = self.answered = 0
 
-    def run(self) -> Propagated | None:
-        is_steady, start, count = False, 0, min(FEWEST_BLOCKS, self.together)
-        while not is_steady and start < self.most_blocks:
+    def run(self) -> Propagated:
+        is_steady, is_answered, start, count = False, True, 0, min(FEWEST_BLOCKS, self.together)
+        while is_answered and not is_steady and start < self.most_blocks:
             count = min(count, self.most_blocks - start)
             sampled = self._solved(start, count)
             for place in range(count):
                 part = slice(place * self.size, (place + 1) * self.size)
-                if not self._take(sampled, part):
-                    return None
-                is_steady = self.blocks >= FEWEST_BLOCKS and self._is_steady()
-                if is_steady:
+                is_answered = self._take(sampled, part)
+                is_steady = is_answered and self.blocks >= FEWEST_BLOCKS and self._is_steady()
+                if is_steady or not is_answered:
                     break
             start, count = start + count, min(2 * count, self.together)
-        intervals = {name: self._interval(name) for name in self.kept}
-        answered = sum(map(len, next(iter(self.kept.values()))))
         return Propagated(
-            intervals,
+            {name: self._interval(name) for name in self.kept} if is_answered else {},
             dict(self.marks),
             self.blocks * self.size,
-            answered,
+            self.answered,
             self.blocks,
             self.size,
             not is_steady,
+            is_answered,
         )
 
     def _solved(self, start: int, count: int) -> Sampled:
@@ -208,15 +208,16 @@ class _Propagation:
         answered = np.ones(self.size, dtype=bool)
         for values in sampled.outputs.values():
             answered &= np.isfinite(values[part])
+        for name, mark in sampled.marks.items():
+            self.marks[name] = self.marks.get(name, 0) + int((mark[part] & answered).sum())
+        self.blocks += 1
+        self.answered += int(answered.sum())
         if answered.sum() < LEAST_ANSWERED * self.size:
             return False
         for name, values in sampled.outputs.items():
             block = values[part][answered]
             self.kept.setdefault(name, []).append(block)
             self.of_blocks.setdefault(name, []).append(_summary(block, self.coverage))
-        for name, mark in sampled.marks.items():
-            self.marks[name] = self.marks.get(name, 0) + int((mark[part] & answered).sum())
-        self.blocks += 1
         return True
 
     def _is_steady(self) -> bool:

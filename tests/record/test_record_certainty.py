@@ -60,6 +60,8 @@ def test_a_criterion_that_asks_for_a_probability_is_decided_by_it(
     assert f"{int(met)} of 1 criterion met" in text
     assert ("- criterion 1 is not met in case base" in text) is not met
     assert "is searched by its verdict at the stated values" in text
+    assert " | criterion 1 at the stated values: met to not met |" in text
+    assert " | criterion 1: met" not in text
 
 
 @pytest.mark.parametrize(

@@ -13,7 +13,17 @@ from calcbook.calcfile.calculation import Report
 from calcbook.faults import Place
 from calcbook.formulas import parse_number
 from calcbook.library import vocabulary
-from calcbook.record.numbers import apart, celsius, fixed, in_report_unit, percent, unit_text, value_text
+from calcbook.record.numbers import (
+    apart,
+    asked_text,
+    celsius,
+    fixed,
+    in_report_unit,
+    percent,
+    share_text,
+    unit_text,
+    value_text,
+)
 from calcbook.record.sections.circuit import bar
 from calcbook.record.sections.validity import residual
 
@@ -59,6 +69,17 @@ def test_places_are_rounded_half_to_even() -> None:
     assert celsius(347.15) == "74.00"
     assert percent(0.10592) == "10.6 %"
     assert celsius(math.nan) == "not known"
+
+
+def test_a_share_of_samples_shows_whether_it_reaches_what_is_asked_for() -> None:
+    assert share_text(0.8597, 0.95) == "85.97 %"
+    assert share_text(0.94996, 0.95) == "94.996 %"
+    assert share_text(0.950004, 0.95) == "95.0004 %"
+    assert share_text(0.95, 0.95) == "95.00 %"
+    # One of a million is neither none nor all.
+    assert share_text(0.999999) == "99.9999 %"
+    assert share_text(0.000001) == "0.0001 %"
+    assert [asked_text(asked) for asked in (0.95, 0.9995, 0.125)] == ["95 %", "99.95 %", "12.5 %"]
 
 
 def test_units_are_printed_after_the_si_brochure() -> None:

@@ -234,5 +234,5 @@ def test_a_verdict_that_a_probability_decides_shows_it() -> None:
     comparison = compare(example_side(text), example_side(with_value(text, "L", "5.61 m")))
     (flip,) = comparison.verdicts
     assert (flip.was, flip.now) == ("criterion not met", "criterion met")
-    assert re.search(r"0\.08\d+ against 0; holds with 8\d\.\d %, 95\.0 % is asked for", flip.figure_was)
-    assert "95.0 % is asked for" in flip.figure_now
+    assert re.search(r"0\.08\d+ against 0; holds with 8\d\.\d\d %, 95 % is asked for", flip.figure_was)
+    assert "95 % is asked for" in flip.figure_now

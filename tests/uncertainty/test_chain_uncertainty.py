@@ -24,6 +24,7 @@ from calcbook.chain.factors import with_factors
 from calcbook.chain.measured import measured
 from calcbook.chain.solve import solve
 from calcbook.interface import record_text, solve_file
+from calcbook.record.uncertainty_data import uncertainty_data
 from calcbook.uncertainty.budget import wide_slopes
 from calcbook.uncertainty.samples import ChainModel
 from calcbook.uncertainty.sampling import propagate
@@ -459,7 +460,7 @@ def test_every_case_of_a_criterion_with_a_probability_is_sampled(tmp_path: Path)
     found = solve_file(path)
     (criterion,) = found.cases[1].criteria
     assert criterion.is_met_as_stated and not criterion.met
-    told = f"it holds with {100 * criterion.reached:.2f} %, and 95.0 % is asked for"
+    told = f"it holds with {100 * criterion.reached:.2f} %, and 95 % is asked for"
     assert told in record_text(found)
     path.write_text(
         text.replace("uncertainty:\n", "uncertainty:\n  case: warm day\n", 1) + case, encoding="utf-8"
@@ -576,9 +577,8 @@ report: {U on: outside}
     assert row.samples / samples.trials == pytest.approx(expected, abs=3.0 * deviation + 1e-3)
 
 
-def test_samples_whose_derived_figure_cannot_be_have_no_answer(tmp_path) -> None:
-    """R_f = R_a - R_b is below zero where R_b, even within 8e-5 of 9e-5, is above 1e-4: 7 of 16."""
-    body = """\
+# R_f = R_a - R_b is below zero where R_b, even within 8e-5 of 9e-5, is above 1e-4: 7 of 16 samples.
+DIFFERENCE = """\
 givens:
   R_a: {value: 1e-4 m^2 K/W, is: both deposits, source: test}
   R_b: {value: 9e-5 m^2 K/W, is: deposit of the other side, source: test}
@@ -591,11 +591,39 @@ resistances:
   - {name: outer film, kind: film, coefficient: {value: 500 W/(m^2 K), source: test}, on: outside}
 report: {U on: outside}
 """
-    found = solved(tmp_path, with_tolerance(body, R_b="8e-5 m^2 K/W"), SAMPLED.format("U_service"))
+OF_DIFFERENCE = "acceptance:\n  - {{that: 'U_service >= 1 W/(m^2 K)', source: test, probability: {}}}\n"
+
+
+def test_samples_whose_derived_figure_cannot_be_have_no_answer(tmp_path) -> None:
+    found = solved(tmp_path, with_tolerance(DIFFERENCE, R_b="8e-5 m^2 K/W"), SAMPLED.format("U_service"))
     samples = found.uncertainty.sampling
     expected = 7.0 / 16.0
     deviation = math.sqrt(expected * (1.0 - expected) / samples.trials)
     assert samples.unanswered / samples.trials == pytest.approx(expected, abs=4.0 * deviation)
+
+
+def test_a_criterion_is_judged_where_few_samples_have_an_answer(tmp_path) -> None:
+    """R_b must lie between R_c and R_a, within 1e-5 of its value, and is drawn evenly within 8e-5: 1 of 8 samples."""
+    body = DIFFERENCE.replace(
+        "derived: {R_f: {is: deposit, relation: R_a - R_b}}",
+        "  R_c: {value: 8e-5 m^2 K/W, is: deposit when new, source: test}\n"
+        "derived:\n"
+        "  R_f: {is: deposit, relation: R_a - R_b}\n"
+        "  R_g: {is: deposit since, relation: R_b - R_c}\n",
+    ).replace(
+        "  - {name: wall,",
+        "  - {name: further deposit, kind: fouling, resistance: R_g, on: inside}\n  - {name: wall,",
+    )
+    more = SAMPLED.format("U_service") + OF_DIFFERENCE.format("50 %")
+    found = solved(tmp_path, with_tolerance(body, R_b="8e-5 m^2 K/W"), more)
+    (criterion,) = found.base.criteria
+    assert criterion.is_met_as_stated and not criterion.met
+    deviation = math.sqrt(7.0 / 64.0 / found.uncertainty.sampling.trials)
+    assert criterion.reached == pytest.approx(1.0 / 8.0, abs=4.0 * deviation)
+    text = record_text(found)
+    assert "fewer than half of a block have an answer" in text
+    assert f"it holds with {100.0 * criterion.reached:.2f} % (" in text and "and 50 % is asked for;" in text
+    assert uncertainty_data(found.uncertainty)["samples"]["results"] == {}
 
 
 # A counterflow cooler whose resistances are as they stand, whatever the temperatures.

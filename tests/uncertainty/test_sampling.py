@@ -214,7 +214,19 @@ def test_samples_without_an_answer_are_counted_and_left_out() -> None:
     assert 1.0 - found.answered / found.trials == pytest.approx(0.1, abs=0.005)
     assert found.marks["high"] / found.answered == pytest.approx(0.5, abs=0.01)
     assert found.intervals["y"].low == pytest.approx(0.1 + 0.9 * 0.025, abs=0.003)
-    assert propagate(lambda x: Sampled({"y": np.full(len(x["a"]), np.nan)}), figures, 0.95, 1) is None
+
+
+def test_where_few_samples_have_an_answer_they_are_counted_and_no_figure_is_made() -> None:
+    found = propagate(
+        lambda x: Sampled({"y": np.where(x["a"] < 0.6, np.nan, x["a"])}, {"high": x["a"] > 0.3}),
+        [Drawn("a", Rectangular(0.5, 0.5))],
+        0.95,
+        1,
+    )
+    assert not found.is_answered and not found.intervals
+    assert found.trials == found.block_size and found.marks["high"] == found.answered
+    # A share of 0.4 of 10 000: 0.02 are four standard deviations.
+    assert found.answered / found.trials == pytest.approx(0.4, abs=0.02)
 
 
 def test_correlated_figures_have_their_coefficient() -> None:

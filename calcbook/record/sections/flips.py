@@ -10,6 +10,7 @@ from calcbook.formulas.names import written_name
 from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Table
 from calcbook.record.numbers import CONCLUSION_DIGITS, MOST_DIGITS, PLAIN_DIGITS, number, unit_text, with_unit
 from calcbook.record.page import Page, case_name
+from calcbook.record.sections.uncertainty import AT_STATED
 
 COLUMNS = ("Given", "Case", "Now", "Flips at", "Change", "In tolerances", "What flips")
 TITLES = {
@@ -71,7 +72,7 @@ def _alone(page: Page) -> list[Block]:
 
 def _kind(page: Page, found: Flips, kind: str) -> list[Block]:
     title, none = TITLES[kind]
-    rows = tuple(_row(flip) for flip in found.of_kind(kind))
+    rows = tuple(_row(flip, page) for flip in found.of_kind(kind))
     blocks: list[Block] = [Heading(4, title)]
     if kind == CRITERION and not page.calculation.acceptance:
         return [*blocks, Paragraph("No acceptance criterion is stated.")]
@@ -100,7 +101,7 @@ def _without(found: Flips, kind: str) -> str:
     return ", ".join(names)
 
 
-def _row(flip: Flip) -> tuple[str, ...]:
+def _row(flip: Flip, page: Page) -> tuple[str, ...]:
     unit = unit_text(flip.unit) if flip.unit else ""
     step = unit_text(DIFFERENCES.get(flip.unit, flip.unit)) if flip.unit else ""
     change = with_unit(number(flip.change, MOST_DIGITS), step)
@@ -116,15 +117,16 @@ def _row(flip: Flip) -> tuple[str, ...]:
         with_unit(number(flip.printed, MOST_DIGITS), unit),
         change,
         tolerances,
-        _what(flip),
+        _what(flip, page),
     )
 
 
-def _what(flip: Flip) -> str:
+def _what(flip: Flip, page: Page) -> str:
     if flip.kind == CONTROLLING:
         return f"{flip.was} to {flip.becomes}"
     where = ", ".join(word for word in (flip.id, flip.condition, flip.level) if word)
-    return f"{where}: {flip.was} to {flip.becomes}"
+    is_stated = flip.kind == CRITERION and not math.isnan(page.calculation.criterion(flip.id).probability)
+    return f"{where}{AT_STATED if is_stated else ''}: {flip.was} to {flip.becomes}"
 
 
 def _searched(found: Flips) -> Table:

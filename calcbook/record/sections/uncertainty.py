@@ -9,7 +9,7 @@ from calcbook.chain.uncertainty_outcome import Budget, BudgetRow, Chance, Sample
 from calcbook.formulas.names import written_name
 from calcbook.quantities import QuantityKind, in_unit
 from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Table
-from calcbook.record.numbers import fixed, number, percent, report_unit, unit_text
+from calcbook.record.numbers import asked_text, fixed, number, percent, report_unit, share_text, unit_text
 from calcbook.record.page import Page, case_name
 
 STANDARD_DIGITS = 2
@@ -73,7 +73,7 @@ def certainty_words(found: Uncertainty | None, item: CriterionResult) -> str:
             return f"{AT_STATED}; holds with {held}{lacking}"
         as_stated = "met" if item.is_met_as_stated else "not met"
         return (
-            f": it holds with {held}{lacking}, and {percent(item.required)} is asked for;"
+            f": it holds with {held}{lacking}, and {asked_text(item.required)} is asked for;"
             f" {as_stated}{AT_STATED}"
         )
     if not math.isnan(item.required):
@@ -247,7 +247,7 @@ def _cautions(found: Uncertainty) -> tuple[str, ...]:
         f" ({_wide_words(budget)}); "
         + (
             "hold the budget against the samples below."
-            if found.sampling
+            if found.sampling and found.sampling.results
             else "samples (`uncertainty:`) show more."
         )
         for budget in found.budgets
@@ -330,16 +330,22 @@ def _sampled(found: Uncertainty, page: Page) -> list[Block]:
     heading = Heading(4, "Monte Carlo propagation")
     samples = found.sampling
     if samples is None:
-        words = (
-            "No figure is drawn: no tolerance and no accuracy of a method acts."
-            if not any(budget.rows for budget in found.budgets)
-            else "Fewer than half of the samples have an answer: no figure is made from the others."
-        )
-        return [heading, Paragraph(words)]
+        return [heading, Paragraph("No figure is drawn: no tolerance and no accuracy of a method acts.")]
+    return [heading, *_figures(found, samples, page), *_chances(samples), *_counts(samples)]
+
+
+def _figures(found: Uncertainty, samples: Sampling, page: Page) -> list[Block]:
+    """The results over the samples beside their budgets, or that there are too few for any."""
+    if not samples.is_answered:
+        return [
+            Paragraph(
+                f"Of {_whole(samples.trials)} samples fewer than half of a block have an answer, and no figure of a"
+                f" result is made from those. Random numbers: {samples.generator}, one stream for each figure."
+            )
+        ]
     budgets = {budget.result: budget for budget in found.budgets}
     still = [name for name in budgets if name not in {one.result for one in samples.results}]
-    blocks: list[Block] = [
-        heading,
+    return [
         Paragraph(_how(samples)),
         *([Paragraph(f"Nothing that is drawn moves {', '.join(still)}.")] if still else []),
         Table(
@@ -362,7 +368,6 @@ def _sampled(found: Uncertainty, page: Page) -> list[Block]:
             f" preferred.{_unsettled(samples)}"
         ),
     ]
-    return [*blocks, *_chances(samples), *_counts(samples)]
 
 
 def _unsettled(samples: Sampling) -> str:
@@ -434,21 +439,22 @@ def _chances(samples: Sampling) -> list[Block]:
 
 def _held(chance: Chance, trials: int) -> str:
     """How often a statement holds, with the samples that count against it for want of an answer."""
-    words = _chance(chance.probability, trials)
+    words = _chance(chance, trials)
     if not chance.unanswered:
         return words
-    return f"{words} ({fixed(100.0 * chance.unanswered, 2)} % of the samples have no answer and count against it)"
+    return f"{words} ({share_text(chance.unanswered)} of the samples have no answer and count against it)"
 
 
-def _chance(probability: float, trials: int) -> str:
+def _chance(chance: Chance, trials: int) -> str:
     """A probability in per cent; never a certainty, where the samples merely show no other case."""
+    probability = chance.probability
     if probability in (0.0, 1.0):
         # Rounded away from certainty, with the digits that show it.
         digits = max(3, 1 - math.floor(math.log10(300.0 / trials)))
         bound = math.ceil(300.0 / trials * 10.0**digits - 1e-6) / 10.0**digits
         words = ("less than", bound) if probability == 0.0 else ("more than", 100.0 - bound)
         return f"{words[0]} {fixed(words[1], digits)} %"
-    return f"{fixed(100.0 * probability, 2)} %"
+    return share_text(probability, chance.required)
 
 
 def _counts(samples: Sampling) -> list[Block]:
