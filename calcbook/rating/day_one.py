@@ -155,8 +155,14 @@ def _turned_down(solved: Solved) -> tuple[UnitState | None, str, _Judged]:
     stated = solved.base.solutions[SERVICE].number(flow)
     low, high = SMALLEST_PART * stated, stated
     inputs = opened.case_inputs("")
-    margin = _margins(opened, inputs, flow, np.array([high]))
-    if not margin[0] > 0.0:
+    (margin,) = _margins(opened, inputs, flow, np.array([high]))
+    if math.isnan(margin):
+        return (
+            None,
+            "the circuit of the clean unit does not close at the duty and the stated cold flow",
+            NOTHING,
+        )
+    if margin <= 0.0:
         return None, "the clean unit does not carry the duty with any flow to spare", NOTHING
     for _ in range(ROUNDS):
         points = np.linspace(low, high, POINTS)
@@ -168,6 +174,12 @@ def _turned_down(solved: Solved) -> tuple[UnitState | None, str, _Judged]:
                 NOTHING,
             )
         low, high = points[below[-1]], points[below[-1] + 1]
+    if math.isnan(_margins(opened, inputs, flow, np.array([low]))[0]):
+        return (
+            None,
+            "the clean unit carries the duty down to a cold flow at which its circuit does not close",
+            NOTHING,
+        )
     one, given = with_figures(opened, inputs, {flow: np.asarray(high)})
     given = completed(one, given)
     solution = solve(one, given, CLEAN)

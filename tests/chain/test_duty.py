@@ -321,6 +321,24 @@ def test_day_one_is_the_clean_unit_with_open_outlets(tmp_path: Path) -> None:
     assert figure(turned, "T_hot_outlet") == pytest.approx(39.4 + 273.15, abs=1e-6)
 
 
+def test_a_cold_stream_whose_properties_end_first_is_not_turned_down(tmp_path: Path) -> None:
+    """In so long a unit the cold outlet would come near 65.6 °C and its mean above 37 °C, where its table has ended."""
+    text = FILE.format(**{**KREITH, "length": "9000 m"})
+    constants = next(line for line in text.splitlines() if "4187 J/(kg K)" in line)
+    table = (
+        "    table: {T: [0 degC, 26.5 degC], density: [1000 kg/m^3, 1000 kg/m^3], viscosity: [0.001 Pa s, 0.001 Pa s],"
+        " conductivity: [0.6 W/(m K), 0.6 W/(m K)], heat capacity: [4187 J/(kg K), 4187 J/(kg K)]}"
+    )
+    path = tmp_path / "rt-1.yaml"
+    path.write_text(text.replace(constants, table), encoding="utf-8")
+    day = solve_file(path).rating.day_one
+    assert day is not None and day.turned_down is None
+    assert (
+        day.no_turn_down
+        == "the clean unit carries the duty down to a cold flow at which its circuit does not close"
+    )
+
+
 def test_day_one_says_what_is_not_checked_of_fluids_of_stated_properties(tmp_path: Path) -> None:
     """Four constants tell neither a vapour pressure nor a freezing point of either liquid."""
     answer = solved(tmp_path, fouling="0.0001 m^2 K/W", length="900 m")
