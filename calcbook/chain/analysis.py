@@ -146,6 +146,8 @@ class _Analysis:
         self.inputs: dict[str, dict[str, np.ndarray]] = {}
         # The named results of the base case, which is solved first.
         self.results: dict[str, Result] = {}
+        # Surfaces at ends of the case at hand at which the circuit does not close.
+        self.open_surfaces: frozenset[str] = frozenset()
 
     def solved(self) -> Solved | None:
         names = ("", *self.chain.calculation.cases)
@@ -234,6 +236,7 @@ class _Analysis:
                 raise NotConverged(self.chain.calculation.number, name, condition)
         states = end_states(self.chain, inputs, solutions)
         ends = closed_ends(states)
+        self.open_surfaces = frozenset(surfaces_at_ends(states)) - frozenset(surfaces_at_ends(ends))
         results = self._results(solutions, inputs, ends)
         self.results = self.results or results
         checks = (*self._checks(name, solutions), *end_checks(states, name), *self._along(ends, name))
@@ -439,13 +442,20 @@ class _Analysis:
     def _without_value(
         self, number: int, criterion: Criterion, case: str, solutions: Mapping[str, Solution]
     ) -> CriterionResult | None:
-        """A criterion over a result that the base case has and a named case has not: it is not met there."""
-        base = self.results.get(criterion.result)
-        limit = self.limit_of(criterion, base.kind, solutions[SERVICE]) if base is not None else None
-        if base is None or limit is None:
+        """A criterion over a surface of an end that does not close, or over a result that the base case has and a named
+        case has not: it is not met there."""
+        if criterion.result in self.open_surfaces:
+            kind, words = vocabulary()["temperature"], "not known: the circuit does not close there"
+        elif criterion.result in self.results:
+            kind, words = self.results[criterion.result].kind, "there is no value in this case"
+        else:
             return None
-        words = "there is no value in this case"
-        return _told_in_words(number, criterion, case, base.kind, float(limit), False, words)
+        limit = self.limit_of(criterion, kind, solutions[SERVICE])
+        return (
+            None
+            if limit is None
+            else _told_in_words(number, criterion, case, kind, float(limit), False, words)
+        )
 
     def _not_lost(
         self, number: int, criterion: Criterion, case: str, solutions: Mapping[str, Solution]

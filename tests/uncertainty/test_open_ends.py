@@ -103,3 +103,10 @@ def test_verdicts_of_samples_at_an_open_end_are_those_of_the_record(tmp_path: Pa
     assert [verdict.words[code] for code in samples.codes(verdict.key)] == ["within", "not evaluable"]
     (check,) = (one for one in solved(tmp_path, ICY).base.checks if one.id == CIRCUIT)
     assert (check.condition, check.state) == ("clean", "not evaluable")
+
+
+def test_a_criterion_on_a_surface_that_is_not_known_is_not_met(tmp_path: Path) -> None:
+    asked = "acceptance:\n  - {that: 'T inside surface clean at the hot outlet >= 1 degC', source: s}\n"
+    warm, icy = (solved(tmp_path, cold, asked) for cold in (WARM, ICY))
+    assert [one.base.criteria[0].met for one in (warm, icy)] == [True, False]
+    assert icy.base.criteria[0].words == "not known: the circuit does not close there"
