@@ -16,9 +16,11 @@ if TYPE_CHECKING:
     from calcbook.calcfile.reading import Reader
 
 FLUID_KINDS = ("mixture", "humid air", "petroleum", "table", "table file", "constants")
+# What a fluid is called that is written in place.
+OF_STREAM, OF_GAP = "fluid of the stream", "fluid of the gap"
 
 
-def read_fluid(reader: Reader, node: Node | None, name_here: str = "fluid of the stream") -> FluidText | None:
+def read_fluid(reader: Reader, node: Node | None, name_here: str = OF_STREAM) -> FluidText | None:
     """A fluid, or None where there is none or it has a fault; ``name_here`` names one that is written in place."""
     if node is None:
         return None

@@ -33,7 +33,7 @@ from calcbook.calcfile.calculation import (
 )
 from calcbook.calcfile.duty import read_duty
 from calcbook.calcfile.empty import is_empty
-from calcbook.calcfile.fluids import read_fluid, read_fluid_record
+from calcbook.calcfile.fluids import OF_GAP, read_fluid, read_fluid_record
 from calcbook.calcfile.in_service import read_cleaning, read_time_in_service
 from calcbook.calcfile.judging import read_acceptance, read_accepted
 from calcbook.calcfile.links import LinkText, Resolve
@@ -806,7 +806,7 @@ class Reader:
             deposit=self.deposit(fields.node("deposit"), "growth" in fields),
             growth=self.growth(fields.node("growth")),
             fins=self.fins(fields.node("fins")),
-            fluid=read_fluid(self, fields.node("fluid"), "fluid of the gap"),
+            fluid=read_fluid(self, fields.node("fluid"), OF_GAP),
             includes=self.names_of(fields.node("includes")),
             holds_for=self.range_of(fields.node("holds for")),
             scales_with=self.factor(fields.scalar("scales with")),

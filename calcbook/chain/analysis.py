@@ -479,7 +479,8 @@ class _Analysis:
         if start and self._is_asked(criterion.result):
             message = f"`{name}` was not found: it is later than the time looked at, or there is none"
         elif start:
-            message = f"`{name}` is found only where the file has `{LATER[start]}:`"
+            where = " in its `duty:`" if criterion.result in OF_PARTS else ""
+            message = f"`{name}` is found only where the file has `{LATER[start]}:`{where}"
         self.collector.add(
             "result-unknown",
             criterion.place,

@@ -864,6 +864,13 @@ def _is_mean_over_length(candidate: Candidate) -> bool:
     return any(need.quantity.name == "length" for need in candidate.method.needs)
 
 
+def _where_parted(chain: Chain) -> str:
+    """The places and parts of the unit that its films are worked out for again, in words; empty for none."""
+    duty = chain.calculation.duty
+    in_parts = ("in every part of the unit",) if duty is not None and duty.parts > 1 else ()
+    return ", ".join((*chain.calculation.places, *in_parts))
+
+
 def _needed(candidate: Candidate) -> Iterator[str]:
     """The symbols that a method and the cards it uses take from outside."""
     yield from (need.symbol for card in candidate.cards for need in card.needs)
@@ -884,11 +891,12 @@ def assumptions_of(chain: Chain, solutions: Mapping[str, Solution]) -> tuple[Run
             for condition in reversed(CONDITIONS):
                 solution = solutions[condition]
                 candidate = chosen(branch, solution)
-                if chain.calculation.places and _is_mean_over_length(candidate):
+                parted = _where_parted(chain)
+                if parted and _is_mean_over_length(candidate):
                     say(
                         f"{branch.name}/mean over the length",
                         f"{candidate.method.id} gives {branch.name} its mean over the whole length,"
-                        f" {', '.join(chain.calculation.places)} too: with the properties there, and no local coefficient.",
+                        f" {parted} too: with the properties there, and no local coefficient.",
                         "its card takes the length",
                         branch.name,
                     )

@@ -350,6 +350,17 @@ def test_day_one_says_what_is_not_checked_of_fluids_of_stated_properties(tmp_pat
         assert words in told
 
 
+def test_a_fluid_that_is_written_in_place_is_called_by_its_stream(tmp_path: Path) -> None:
+    named = FILE.format(**{**KREITH, "length": "900 m"})
+    constants = re.search(r"  warm:\n    (constants: .*)\n    source: s\n", named)
+    assert constants is not None
+    inside = named.replace(constants[0], "").replace("fluid: warm", f"fluid: {{{constants[1]}, source: s}}")
+    path = tmp_path / "rt-1.yaml"
+    for text, heading in ((named, "Fluid warm of stream hot"), (inside, "Fluid of stream hot")):
+        path.write_text(text, encoding="utf-8")
+        assert f"### {heading}\n" in record_text(solve_file(path))
+
+
 def test_a_stated_film_that_knows_no_flow_is_not_turned_down() -> None:
     day = solve_file(RATED).rating.day_one
     assert day is not None and day.turned_down is None
@@ -445,7 +456,7 @@ def test_a_criterion_takes_the_area_of_the_parts(tmp_path: Path) -> None:
     (item,) = answer.base.criteria
     assert item.value == figure(answer, "area_margin of parts") != figure(answer, "area_margin")
     path.write_text(re.sub(r"(?m)^  parts: .*\n", "", text), encoding="utf-8")
-    with pytest.raises(Faults, match="is found only where the file has `parts:`"):
+    with pytest.raises(Faults, match="is found only where the file has `parts:` in its `duty:`"):
         solve_file(path)
 
 

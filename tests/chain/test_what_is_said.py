@@ -64,6 +64,9 @@ def test_a_place_has_no_local_coefficient_of_a_method_that_follows_the_length() 
     text = said(example("oc-201"))["oil film/mean over the length"]
     assert "gnielinski-laminar-t" in text and "at oil outlet" in text
     assert "tube-side film/mean over the length" not in said(example("wc-101"))
+    assert "gives tube-side film its mean over the whole length, in every part of the unit too" in said(
+        example("wc-105")
+    ).get("tube-side film/mean over the length", "")
 
 
 @pytest.mark.parametrize(("bore", "state"), [("10.2 mm", "within"), ("5 mm", "outside")])

@@ -212,7 +212,7 @@ def _parts(page: Page, parts: Parts) -> list[Block]:
                 text
                 for condition in ("service", "clean")
                 for text in (
-                    _plain(page, row.overall[condition], "overall coefficient", CONCLUSION_DIGITS),
+                    _plain(page, row.overall[condition], "overall coefficient", PLAIN_DIGITS),
                     _plain(page, row.area[condition], "area", PLAIN_DIGITS),
                 )
             ),

@@ -6,6 +6,7 @@ import math
 from collections.abc import Iterator
 
 from calcbook.calcfile.calculation import Assumption, FluidText, Given, Value
+from calcbook.calcfile.fluids import OF_GAP, OF_STREAM
 from calcbook.chain.films import SATURATION_FIGURES
 from calcbook.chain.fluids import BoilingOperation, FixedOperation, PropertyOperation
 from calcbook.chain.outcome import PropertyRow
@@ -75,13 +76,18 @@ def _petroleum(owner: str, fluid: FluidText, page: Page) -> list[Block]:
     if points:
         rows.append(("viscosity", "ASTM D341, times the density", points))
     return [
-        Heading(3, f"Fluid {fluid.name} of {owner}"),
+        _title(owner, fluid),
         Paragraph(
             f"A petroleum liquid ({fluid.product or 'no product stated'}) by its relative density. Source:"
             f" {fluid.source or 'no source'}."
         ),
         Table(("Property", "Card", "Relations or points"), tuple(rows)),
     ]
+
+
+def _title(owner: str, fluid: FluidText) -> Heading:
+    named = "" if fluid.name in (OF_STREAM, OF_GAP) else f" {fluid.name}"
+    return Heading(3, f"Fluid{named} of {owner}")
 
 
 def _fluid(owner: str, fluid: FluidText) -> list[Block]:
@@ -91,7 +97,7 @@ def _fluid(owner: str, fluid: FluidText) -> list[Block]:
         points = "; ".join(f"{temperature.text}: {viscosity.text}" for temperature, viscosity in fluid.astm)
         rows.append(("viscosity after ASTM D341", points))
     return [
-        Heading(3, f"Fluid {fluid.name} of {owner}"),
+        _title(owner, fluid),
         Paragraph(f"Source: {fluid.source or 'no source'}."),
         Table(("Property", "Values as written"), tuple(rows)),
     ]
