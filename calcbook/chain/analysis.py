@@ -81,6 +81,8 @@ LATER = {
     **{f"U_{condition}{MEAN_OF_PLACES}": "evaluate at" for condition in CONDITIONS},
     **dict.fromkeys(OF_PARTS, "parts"),
 }
+# What is said of a surface at an end at which the circuit does not close.
+NOT_CLOSED = "not known: the circuit does not close there"
 # Slopes below this part of U are the rounding of sums that cancel.
 NOISE = 1e-13
 
@@ -403,22 +405,7 @@ class _Analysis:
             stated = self.limit_of(criterion, result.kind, solutions[SERVICE])
             if stated is None:
                 continue
-            limit = float(stated)
-            margin = float(criterion_margin(criterion, result.value, limit))
-            met = bool(is_met(criterion, margin))
-            found.append(
-                CriterionResult(
-                    f"criterion {number}",
-                    case,
-                    criterion.text,
-                    result.value,
-                    limit,
-                    margin,
-                    met,
-                    result.kind,
-                    criterion.source,
-                )
-            )
+            found.append(_by_value(number, criterion, case, result.kind, result.value, float(stated)))
         return tuple(found)
 
     def _along(self, ends: tuple[EndState, ...], case: str) -> list[CheckResult]:
@@ -445,17 +432,15 @@ class _Analysis:
         """A criterion over a surface of an end that does not close, or over a result that the base case has and a named
         case has not: it is not met there."""
         if criterion.result in self.open_surfaces:
-            kind, words = vocabulary()["temperature"], "not known: the circuit does not close there"
+            kind, words = vocabulary()["temperature"], NOT_CLOSED
         elif criterion.result in self.results:
             kind, words = self.results[criterion.result].kind, "there is no value in this case"
         else:
             return None
         limit = self.limit_of(criterion, kind, solutions[SERVICE])
-        return (
-            None
-            if limit is None
-            else _told_in_words(number, criterion, case, kind, float(limit), False, words)
-        )
+        if limit is None:
+            return None
+        return _told_in_words(number, criterion, case, kind, float(limit), False, words)
 
     def _not_lost(
         self, number: int, criterion: Criterion, case: str, solutions: Mapping[str, Solution]
@@ -606,36 +591,41 @@ def clean_surface_criteria(
 ) -> tuple[CriterionResult, ...]:
     """The acceptance criteria on temperatures of the clean unit in another state than the stated one.
 
-    ``ends`` are both ends of that state, ``state`` its name, which stands in place of a case.
+    ``ends`` are both ends of that state, ``state`` its name, which stands in place of a case. One on a surface at an
+    end at which the circuit does not close is not met.
     """
+    analysis = _Analysis(chain, Collector())
     kind = vocabulary()["temperature"]
     results = {
         f"T {name} {CLEAN}": ResultFigures(value, kind, "") for name, value in interfaces(chain, solution)
     } | surfaces_at_ends(ends)
     found = []
-    for item in criterion_figures(chain, {SERVICE: solution}, results):
-        value, margin = (
-            float(np.ravel(figures)[0]) for figures in (results[item.criterion.result].values, item.margin)
+    for number, criterion in enumerate(chain.calculation.acceptance, 1):
+        item = results.get(criterion.result)
+        stated = analysis.limit_of(criterion, kind, solution) if item is not None else None
+        if item is None or stated is None:
+            continue
+        value, limit = float(np.ravel(item.values)[0]), float(stated)
+        found.append(
+            _by_value(number, criterion, state, kind, value, limit)
+            if math.isfinite(value)
+            else _told_in_words(number, criterion, state, kind, limit, False, NOT_CLOSED)
         )
-        if math.isfinite(value):
-            limit = value - margin * item.criterion.direction
-            found.append(
-                CriterionResult(
-                    f"criterion {item.number}",
-                    state,
-                    item.criterion.text,
-                    value,
-                    limit,
-                    margin,
-                    bool(is_met(item.criterion, margin)),
-                    kind,
-                    item.criterion.source,
-                )
-            )
     return tuple(found)
 
 
 # --- small helpers ----------------------------------------------------------------------------------
+
+
+def _by_value(
+    number: int, criterion: Criterion, case: str, kind: QuantityKind, value: float, limit: float
+) -> CriterionResult:
+    """A criterion that the value of its result settles."""
+    margin = float(criterion_margin(criterion, value, limit))
+    met = bool(is_met(criterion, margin))
+    return CriterionResult(
+        f"criterion {number}", case, criterion.text, value, limit, margin, met, kind, criterion.source
+    )
 
 
 def _told_in_words(

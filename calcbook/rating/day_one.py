@@ -19,7 +19,7 @@ from calcbook.chain.checks import evaluate_check
 from calcbook.chain.completing import completed
 from calcbook.chain.duty import OWNER as DUTY
 from calcbook.chain.duty import PASSES
-from calcbook.chain.ends import closed_ends, end_checks, end_states
+from calcbook.chain.ends import end_checks, end_states
 from calcbook.chain.findings import lacking_property, phases_not_checked, wall_checks
 from calcbook.chain.outcome import CheckResult, CriterionResult, Solved
 from calcbook.chain.plausible import band_checks
@@ -246,7 +246,6 @@ def _judged(chain: Chain, inputs: Mapping[str, Array], solution: Solution, state
     """Phases at the wall, at the means and at both ends, what the duty itself limits, and figures outside their
     bands, of the clean unit; and the criteria on its temperatures."""
     states = end_states(chain, inputs, {CLEAN: solution})
-    ends = closed_ends(states)
     phases = [*wall_checks(chain, "", solution), *end_checks(states, "")]
     found = [check for check in phases if check.state != "within"]
     found += [check for check in _ranges(chain, solution) if check.state in ("outside", "not evaluable")]
@@ -254,7 +253,7 @@ def _judged(chain: Chain, inputs: Mapping[str, Array], solution: Solution, state
     found += band_checks(chain, "", solution)
     return _Judged(
         tuple(check._replace(condition=state) for check in found),
-        clean_surface_criteria(chain, solution, ends, state),
+        clean_surface_criteria(chain, solution, states, state),
     )
 
 

@@ -11,7 +11,7 @@ from calcbook.chain.flips_outcome import LIMIT
 from calcbook.chain.measured import measured
 from calcbook.chain.outcome import Solved
 from calcbook.chain.samples import evaluate_samples
-from calcbook.interface import solve_file
+from calcbook.interface import record_text, solve_file
 from calcbook.uncertainty.samples import OUTSIDE_ANY, ChainModel
 
 FILE = """
@@ -109,4 +109,9 @@ def test_a_criterion_on_a_surface_that_is_not_known_is_not_met(tmp_path: Path) -
     asked = "acceptance:\n  - {that: 'T inside surface clean at the hot outlet >= 1 degC', source: s}\n"
     warm, icy = (solved(tmp_path, cold, asked) for cold in (WARM, ICY))
     assert [one.base.criteria[0].met for one in (warm, icy)] == [True, False]
-    assert icy.base.criteria[0].words == "not known: the circuit does not close there"
+    words = "not known: the circuit does not close there"
+    day = icy.rating.day_one
+    assert day is not None
+    (clean,) = day.criteria
+    assert icy.base.criteria[0].words == clean.words == words and not clean.met
+    assert f"| criterion 1 | clean | {clean.that} | {words} |" in record_text(icy)
