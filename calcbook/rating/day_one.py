@@ -166,7 +166,8 @@ def _turned_down(solved: Solved) -> tuple[UnitState | None, str, _Judged]:
         return None, "the clean unit does not carry the duty with any flow to spare", NOTHING
     for _ in range(ROUNDS):
         points = np.linspace(low, high, POINTS)
-        below = np.flatnonzero(~(_margins(opened, inputs, flow, points) > 0.0))
+        margins = _margins(opened, inputs, flow, points)
+        below = np.flatnonzero(~(margins > 0.0))
         if not len(below):
             return (
                 None,
@@ -174,7 +175,7 @@ def _turned_down(solved: Solved) -> tuple[UnitState | None, str, _Judged]:
                 NOTHING,
             )
         low, high = points[below[-1]], points[below[-1] + 1]
-    if math.isnan(_margins(opened, inputs, flow, np.array([low]))[0]):
+    if math.isnan(margins[below[-1]]):
         return (
             None,
             "the clean unit carries the duty down to a cold flow at which its circuit does not close",

@@ -113,14 +113,13 @@ class WallPhase:
         return {*self.surfaces, self.pressure} - {""}
 
     def outside(self, solution: Solution) -> Array:
-        """The samples in which the fluid changes its phase at the wall."""
+        """The samples in which the fluid changes its phase at the wall; where the circuit does not close none is known."""
         sides = [np.asarray(solution.values[name]) for name in self.surfaces]
         end: Array = np.asarray(self.end)
         if self.line is not None:
             end = self.line.boiling_temperature(solution.values[self.pressure], outside="nan")
-        if self.name == "boils":
-            return np.asarray(np.maximum.reduce(sides) >= end)
-        return np.asarray(np.minimum.reduce(sides) <= end)
+        changes = np.maximum.reduce(sides) >= end if self.name == "boils" else np.minimum.reduce(sides) <= end
+        return np.asarray(changes & solution.converged)
 
 
 @dataclass(frozen=True, slots=True)
@@ -368,9 +367,6 @@ class ChainModel:
         for one in self.limits:
             solution = ends[f"{one.condition} {one.place}"] if one.place else solutions[one.condition]
             outside = np.broadcast_to(one.outside(solution), (size,))
-            if isinstance(one, WallPhase) and one.place:
-                # Where the circuit does not close at an end nothing is known of its walls: that is a limit of its own.
-                outside = outside & solution.converged
             if one.level == "stop":
                 possible = possible & ~outside
             else:
