@@ -99,6 +99,9 @@ def _all_figures(chain: Chain, solution: Solution) -> Iterator[Figure]:
                 and solution.number(element.resistance) != 0.0
             ):
                 yield Figure(element.name, "fouling allowance", solution.number(element.resistance))
+        if "area margin" in chain.results:
+            over = 1.0 + solution.number(chain.results["area margin"])
+            yield Figure("duty", "installed over required area", over)
     if "heat flux" in chain.results:
         yield Figure("U", "heat flux", abs(solution.number(chain.results["heat flux"])))
     if not any(wall.insulates for wall in walls) and not gaps(chain):

@@ -11,6 +11,7 @@ import pytest
 
 from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.solve import solve
+from calcbook.chain.types import SERVICE
 from calcbook.faults import Faults
 from calcbook.interface import record_text, solve_file
 
@@ -626,3 +627,26 @@ def test_an_odd_number_of_tube_passes_is_said_to_be_taken_as_an_even_one(tmp_pat
         solved = solve_file(path, for_record=False)
         said[number] = [item.text for item in solved.base.assumptions if item.id == "duty/odd passes"]
     assert said == {3: ["3 tube passes are taken as an even number of them."], 4: []}
+
+
+def test_a_margin_that_no_unit_has_is_a_caution_that_names_the_slip(tmp_path: Path) -> None:
+    text = RATED_COOLER.read_text(encoding="utf-8")
+    name = "duty / band / installed over required area"
+    sound = tmp_path / "sound.yaml"
+    sound.write_text(text, encoding="utf-8")
+    assert name not in {check.id for check in solve_file(sound).base.checks}
+    # 18.2 kg/h in place of 18.2 kg/s on both sides: a duty of a few hundred W for 18 m²
+    slipped = tmp_path / "slipped.yaml"
+    slipped.write_text(
+        text.replace("18.2 kg/s", "18.2 kg/h").replace(
+            "20.6 kg/s, is: cooling water flow,", "20.6 kg/h, is: flow,"
+        ),
+        encoding="utf-8",
+    )
+    answer = solve_file(slipped)
+    found = [check for check in answer.base.checks if check.id == name]
+    assert [(check.condition, check.level, check.state) for check in found] == [
+        (SERVICE, "caution", "outside")
+    ]
+    assert found[0].value == 1.0 + figure(answer, "area_margin") > 3.0
+    assert "kg/h in place of kg/s" in found[0].because
