@@ -22,7 +22,7 @@ from calcbook.chain.types import SERVICE, Chain
 from calcbook.chain.variants import with_figures
 from calcbook.formulas import evaluate, parse_expression
 from calcbook.library import evaluate_method, vocabulary
-from calcbook.rating.day_one import open_chain
+from calcbook.rating.opened import open_chain
 from calcbook.rating.summing import Summed, crossing, root
 from calcbook.rating.turns import turns
 

@@ -1,0 +1,48 @@
+"""The calculation of a rated unit with ends of its streams left open: they are found by effectiveness."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+from calcbook.calcfile.calculation import DutySide, Value
+from calcbook.chain.build import build
+from calcbook.chain.outcome import Solved
+from calcbook.chain.types import SERVICE, Chain
+from calcbook.faults import Collector
+from calcbook.quantities import read_any
+
+
+def open_chain(solved: Solved, *sides: str) -> Chain | None:
+    """The calculation with the outlets of some sides open and the means of their ends; None where it has a fault.
+
+    An inlet that the file leaves open stays where it was found.
+    """
+    before = solved.chain
+    calculation, duty = before.calculation, before.calculation.duty
+    assert duty is not None
+    opened = {name: _with_inlet(solved, name, side) for name, side in duty.sides.items()}
+    opened |= {name: replace(opened[name], outlet=None) for name in sides}
+    open_streams = {opened[name].stream for name in sides if opened[name].has_ends}
+    streams = {
+        name: replace(stream, temperature=None) if name in open_streams else stream
+        for name, stream in calculation.streams.items()
+    }
+    changed = replace(
+        calculation,
+        duty=replace(duty, hot=opened["hot"], cold=opened["cold"], parts=1),
+        streams=streams,
+    )
+    collector = Collector()
+    chain = build(changed, before.library, collector, cross_check=False)
+    return chain if chain is not None and not collector and chain.open_figures else None
+
+
+def _with_inlet(solved: Solved, name: str, side: DutySide) -> DutySide:
+    """A side with the inlet that was found for it, where the file states none."""
+    if side.open_end != "inlet":
+        return side
+    found = solved.base.solutions[SERVICE].number(solved.chain.results[f"T {name} inlet"])
+    text = f"{found!r} K"
+    return replace(
+        side, inlet=Value(text, side.place, quantity=read_any(text), source="found", has_source=True)
+    )
