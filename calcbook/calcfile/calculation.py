@@ -180,11 +180,16 @@ class DutySide:
         return "inlet" if self.inlet is None else "outlet"
 
 
+# Only flows that pass each other end to end can be cut into parts that follow each other.
+CUT_ARRANGEMENTS = ("counterflow", "parallel flow")
+
+
 @dataclass(frozen=True, slots=True)
 class Duty:
     """What the unit has to transfer: arrangement of the flows, both streams, parts that it is cut into.
 
-    ``installed_area`` is that of the drawing on the surface of U; None where the geometry gives it.
+    ``installed_area`` is that of the drawing on the surface of U; None where the geometry gives it. ``throttled`` is the
+    side that the control acts on; empty where the file does not say.
     """
 
     arrangement: str
@@ -194,10 +199,17 @@ class Duty:
     parts: int
     place: Place
     installed_area: Value | None = None
+    throttled: str = ""
 
     @property
     def sides(self) -> dict[str, DutySide]:
         return {"hot": self.hot, "cold": self.cold}
+
+    @property
+    def can_be_cut(self) -> bool:
+        """Whether parts follow each other along the unit: flows that pass end to end, or one that keeps its temperature."""
+        keeps = not all(side.has_ends for side in self.sides.values())
+        return keeps or self.arrangement in CUT_ARRANGEMENTS
 
     def names(self, stream: str) -> bool:
         """Whether a stream stands on one of the sides."""

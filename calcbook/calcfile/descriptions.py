@@ -208,6 +208,12 @@ DUTY = Description(
             "node",
             of=SOURCED,
         ),
+        Key(
+            "throttled",
+            "side that the control throttles: its flow, or the pressure of a stream that changes phase",
+            "choice",
+            choices=("hot", "cold"),
+        ),
     ),
 )
 STREAM = Description(

@@ -5,7 +5,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING
 
 from calcbook.calcfile import descriptions as described
-from calcbook.calcfile.calculation import Duty, DutySide
+from calcbook.calcfile.calculation import CUT_ARRANGEMENTS, Duty, DutySide
 from calcbook.documents import Fields, read_mapping
 from calcbook.documents import Mapping as MappingNode
 from calcbook.faults import Place, nearest_names, shown
@@ -14,8 +14,6 @@ if TYPE_CHECKING:
     from calcbook.calcfile.reading import Reader
 
 LARGEST_COUNT = 50
-# Only flows that pass each other end to end can be cut into parts that follow each other.
-CUT_ARRANGEMENTS = ("counterflow", "parallel flow")
 
 
 def read_duty(reader: Reader) -> Duty | None:
@@ -35,6 +33,7 @@ def read_duty(reader: Reader) -> Duty | None:
         _count(reader, fields, "parts"),
         node.place,
         reader.value(fields.node("installed area")),
+        fields.text("throttled"),
     )
     _check(reader, duty, fields)
     return duty
@@ -101,7 +100,7 @@ def _check(reader: Reader, duty: Duty, fields: Fields) -> None:
             "a stated area does not say whether it counts the plugged tubes",
             "no installed area: that of the geometry is of the open tubes",
         )
-    if "parts" in fields and duty.arrangement and duty.arrangement not in CUT_ARRANGEMENTS:
+    if "parts" in fields and duty.arrangement and not duty.can_be_cut:
         _refuse(
             reader,
             fields.place_of("parts"),

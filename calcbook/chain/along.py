@@ -13,7 +13,8 @@ from calcbook.formulas import number_text
 U_SPREAD = 0.2
 # Results of a unit in parts: areas in service and clean, and the margin in service.
 OF_PARTS = ("area_service of parts", "area_clean of parts", "area_margin of parts")
-BECAUSE = "one mean state hardly stands for the unit: `parts:` of the duty sums the area part by part"
+BECAUSE = "one mean state hardly stands for the unit"
+IN_PARTS = "`parts:` of the duty sums the area part by part"
 
 
 def u_along(states: Sequence[EndState], case: str) -> list[CheckResult]:
@@ -26,11 +27,13 @@ def u_along(states: Sequence[EndState], case: str) -> list[CheckResult]:
             if state.solution.condition == condition
         ]
         if len(overall) > 1:
-            found.append(_check(max(overall) / min(overall) - 1.0, condition, case))
+            duty = states[0].chain.calculation.duty
+            because = f"{BECAUSE}: {IN_PARTS}" if duty is not None and duty.can_be_cut else BECAUSE
+            found.append(_check(max(overall) / min(overall) - 1.0, condition, case, because))
     return found
 
 
-def _check(spread: float, condition: str, case: str) -> CheckResult:
+def _check(spread: float, condition: str, case: str, because: str) -> CheckResult:
     is_held = spread <= U_SPREAD
     return CheckResult(
         "duty / ends / overall coefficient",
@@ -45,7 +48,7 @@ def _check(spread: float, condition: str, case: str) -> CheckResult:
         "1",
         "caution",
         "within" if is_held else "outside",
-        BECAUSE,
+        because,
         "common practice",
         "common practice",
         "" if is_held else "above",

@@ -18,7 +18,7 @@ from calcbook.chain.circuit import branch_coefficient
 from calcbook.chain.gaps import gaps
 from calcbook.chain.outcome import CheckResult
 from calcbook.chain.solve import Solution
-from calcbook.chain.types import SERVICE, Branch, Chain, Group, Layer
+from calcbook.chain.types import SERVICE, Branch, Chain, Group, Layer, StreamState
 from calcbook.library.plausibility import FOULING, OVERALL, Band, Typical, bands, typical
 from calcbook.quantities import QuantityKind, unit_display
 
@@ -46,6 +46,8 @@ FILMS = {
     "": "stated film coefficient",
 }
 
+THROTTLED_STEAM = "pressure of throttled steam"
+
 
 @dataclass(frozen=True, slots=True)
 class Figure:
@@ -65,6 +67,19 @@ def band_checks(chain: Chain, case: str, solution: Solution) -> list[CheckResult
     if solution.condition == SERVICE:
         found += _service_checks(chain, case, solution)
     return [check for check in found if check is not None]
+
+
+def throttled_steam(stream: StreamState, stated: Solution, throttled: Solution) -> list[CheckResult]:
+    """A caution where condensing steam above the atmosphere is throttled to a pressure below it."""
+    fluid = stream.fluid.fixed
+    if fluid is None or fluid.name != "Water" or stream.phase != "gas" or not stream.pressure:
+        return []
+    band = bands()[THROTTLED_STEAM]
+    owner, here = f"stream {stream.name}", throttled.number(stream.pressure)
+    if stated.number(stream.pressure) < band.low:
+        return []
+    check = _outside(Figure(owner, band.name, here), band, "", throttled.condition)
+    return [check] if check is not None else []
 
 
 def figures(chain: Chain, solution: Solution) -> Iterator[Figure]:

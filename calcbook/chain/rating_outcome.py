@@ -45,12 +45,16 @@ class Parts(NamedTuple):
 
 
 class SideState(NamedTuple):
-    """One side of the unit in one state: flow, outlet, speed (NaN where not known), wetted surface."""
+    """One side of the unit in one state: flow, outlet, speed (NaN where not known), wetted surface.
+
+    ``pressure`` is that of a stream that changes phase, NaN for others and where it is not known.
+    """
 
     mass_flow: float
     outlet: float
     speed: float
     surface: float
+    pressure: float
 
 
 class UnitState(NamedTuple):
@@ -61,10 +65,28 @@ class UnitState(NamedTuple):
     sides: Mapping[str, SideState]
 
 
+# What a control moves on a side.
+FLOW, PRESSURE, TEMPERATURE = "flow", "pressure", "saturation temperature"
+
+
+class Throttle(NamedTuple):
+    """What the control moves: a side, and of it a flow, a pressure or a temperature; and whether the file says so."""
+
+    side: str
+    what: str
+    is_stated: bool
+
+    @property
+    def other(self) -> str:
+        """The side that keeps what the duty states of it."""
+        return "cold" if self.side == "hot" else "hot"
+
+
 class DayOne(NamedTuple):
     """The clean unit at the inlets of the duty: as it runs, and turned down until it gives the duty.
 
     ``service`` is the unit with its allowances. ``turned_down`` is None with the reason in ``no_turn_down``.
+    ``throttle`` is what the control moves for it.
     ``checks`` are phases at the wall and figures outside their bands, in the state that ``condition`` names;
     ``criteria`` are those of the file on temperatures of the clean unit, in the state that their case names;
     ``not_checked`` are the streams of which boiling or freezing at the wall cannot be checked.
@@ -74,6 +96,7 @@ class DayOne(NamedTuple):
     clean: UnitState
     turned_down: UnitState | None
     no_turn_down: str
+    throttle: Throttle
     checks: tuple[CheckResult, ...]
     criteria: tuple[CriterionResult, ...]
     not_checked: Mapping[str, tuple[str, ...]]
@@ -85,10 +108,11 @@ class DayOne(NamedTuple):
 
     @property
     def flow_part(self) -> float:
-        """The turned-down cold flow over that of service; NaN where there is none."""
+        """The turned-down flow over that of service; NaN where there is none."""
         if self.turned_down is None:
             return float("nan")
-        return self.turned_down.sides["cold"].mass_flow / self.service.sides["cold"].mass_flow
+        side = self.throttle.side
+        return self.turned_down.sides[side].mass_flow / self.service.sides[side].mass_flow
 
     @property
     def turned_down_hotter(self) -> float:

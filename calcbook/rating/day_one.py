@@ -44,7 +44,7 @@ def day_one(solved: Solved) -> DayOne | str | None:
                 f": {why}" if why else ""
             )
     clean, in_service = solutions[CLEAN], solutions[SERVICE]
-    turned, reason, left = turned_down(solved)
+    turned = turned_down(solved)
     with_allowances = tuple(
         check._replace(condition=WITH_ALLOWANCES) for check in limits_of_duty(chain, in_service)
     )
@@ -54,9 +54,10 @@ def day_one(solved: Solved) -> DayOne | str | None:
     return DayOne(
         service_state,
         clean_state,
-        turned,
-        reason,
-        with_allowances + as_it_runs.checks + left.checks,
-        as_it_runs.criteria + left.criteria,
+        turned.state,
+        turned.reason,
+        turned.throttle,
+        with_allowances + as_it_runs.checks + turned.left.checks,
+        as_it_runs.criteria + turned.left.criteria,
         phases_not_checked(clean_chain, clean),
     )

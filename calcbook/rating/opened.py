@@ -13,7 +13,8 @@ from calcbook.quantities import read_any
 
 
 def open_chain(solved: Solved, *sides: str) -> Chain | None:
-    """The calculation with the outlets of some sides open and the means of their ends; None where it has a fault.
+    """The calculation in one part, with the outlets of some sides open and the means of their ends; None where it has a
+    fault.
 
     An inlet that the file leaves open stays where it was found.
     """
@@ -34,7 +35,7 @@ def open_chain(solved: Solved, *sides: str) -> Chain | None:
     )
     collector = Collector()
     chain = build(changed, before.library, collector, cross_check=False)
-    return chain if chain is not None and not collector and chain.open_figures else None
+    return chain if chain is not None and not collector and (chain.open_figures or not sides) else None
 
 
 def _with_inlet(solved: Solved, name: str, side: DutySide) -> DutySide:

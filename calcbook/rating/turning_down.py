@@ -1,85 +1,140 @@
-"""The clean unit turned down by its control until it gives the duty, and no more."""
+"""The clean unit throttled by its control until it gives the duty, and no more.
+
+The control takes the flow of one stream, or the saturation of one that changes phase; the other stream keeps what the
+duty states of it, so that the duty follows from it alone.
+"""
 
 from __future__ import annotations
 
 import math
 from collections.abc import Mapping
+from typing import NamedTuple
 
 import numpy as np
 
+from calcbook.calcfile.calculation import Duty
 from calcbook.chain.completing import completed
 from calcbook.chain.outcome import Solved
-from calcbook.chain.rating_outcome import UnitState
+from calcbook.chain.plausible import throttled_steam
+from calcbook.chain.rating_outcome import FLOW, PRESSURE, TEMPERATURE, Throttle, UnitState
 from calcbook.chain.solve import solve
-from calcbook.chain.types import CLEAN, SERVICE, Chain
+from calcbook.chain.types import CLEAN, SERVICE, Chain, StreamState
 from calcbook.chain.variants import with_figures
+from calcbook.properties import PropertyFault
 from calcbook.rating.opened import open_chain
 from calcbook.rating.unit_states import NOTHING, Judged, judged, unit_state
 
 Array = np.ndarray
-# The flow is looked for down to this part of the stated one.
+TURNED_DOWN = "turned down"
+# A flow is looked for down to this part of the stated one.
 SMALLEST_PART = 0.02
-POINTS = 41
-ROUNDS = 6
+POINTS, ROUNDS = 41, 6
+# A saturation temperature is looked for up to this part of its way to the other stream, where the need for area has no
+# end, and is known this well, in K.
+LARGEST_PART, KNOWN = 0.999, 1e-9
 
 
-def turned_down(solved: Solved) -> tuple[UnitState | None, str, Judged]:
-    """The clean unit with its cold flow turned down until it gives the duty; or why there is none.
+class TurnedDown(NamedTuple):
+    """The unit under its control, what that leaves and what it moved; or why there is no such state."""
 
-    The hot ends stay as stated and the cold outlet follows the flow; the flow is found where the margin of
-    area is nothing, by cutting ever smaller pieces of a range, all points of a round in one call.
-    """
-    chain, table = solved.chain, solved.chain.results
-    duty = chain.calculation.duty
+    state: UnitState | None
+    reason: str
+    left: Judged
+    throttle: Throttle
+
+
+class _None(Exception):
+    """Why there is no turned-down state, in words."""
+
+
+class _Open(Exception):
+    """The circuit does not close at a figure of the search."""
+
+
+def turned_down(solved: Solved) -> TurnedDown:
+    """The clean unit with its control throttled until it gives the duty; or why there is none."""
+    duty = solved.chain.calculation.duty
     assert duty is not None
-    flow = chain.streams[duty.cold.stream].mass_flow
-    if "C cold" not in table or not flow:
-        return None, "the cold stream has no mass flow that could be turned down", NOTHING
-    if duty.hot.open_end == "outlet":
-        return None, "the outlet of the hot stream is not stated", NOTHING
-    opened = open_chain(solved, "cold")
-    if opened is None or "duty" not in opened.results:
-        return None, "the duty does not follow from the hot stream alone", NOTHING
-    fixed = _stated_without_scale(solved, duty.cold.stream)
-    if fixed:
-        return (
-            None,
-            f"the coefficient of {fixed} is stated, and nothing says how it follows the flow",
-            NOTHING,
-        )
-    stated = solved.base.solutions[SERVICE].number(flow)
-    low, high = SMALLEST_PART * stated, stated
-    inputs = opened.case_inputs("")
-    (margin,) = _margins(opened, inputs, flow, np.array([high]))
-    if math.isnan(margin):
-        return (
-            None,
-            "the circuit of the clean unit does not close at the duty and the stated cold flow",
-            NOTHING,
-        )
-    if margin <= 0.0:
-        return None, "the clean unit does not carry the duty with any flow to spare", NOTHING
-    for _ in range(ROUNDS):
-        points = np.linspace(low, high, POINTS)
-        margins = _margins(opened, inputs, flow, points)
-        below = np.flatnonzero(~(margins > 0.0))
-        if not len(below):
-            return (
-                None,
-                f"the clean unit carries the duty at {SMALLEST_PART:.0%} of the cold flow still",
-                NOTHING,
-            )
-        low, high = points[below[-1]], points[below[-1] + 1]
-    if math.isnan(margins[below[-1]]):
-        return (
-            None,
-            "the clean unit carries the duty down to a cold flow at which its circuit does not close",
-            NOTHING,
-        )
-    one, given = with_figures(opened, inputs, {flow: np.asarray(high)})
+    side = throttled_side(duty)
+    throttle = Throttle(side, _moved(solved, side), bool(duty.throttled))
+    try:
+        chain, figures = (_flow if throttle.what == FLOW else _saturation)(solved, duty, throttle)
+    except _None as reason:
+        return TurnedDown(None, str(reason), NOTHING, throttle)
+    one, given = with_figures(chain, chain.case_inputs(""), figures)
     given = completed(one, given)
     solution = solve(one, given, CLEAN)
-    return unit_state(one, solution), "", judged(one, given, solution, "turned down")
+    left = judged(one, given, solution, TURNED_DOWN)
+    if throttle.what != FLOW:
+        stream = one.streams[duty.sides[side].stream]
+        checks = throttled_steam(stream, solved.base.solutions[SERVICE], solution)
+        left = left._replace(checks=left.checks + tuple(c._replace(condition=TURNED_DOWN) for c in checks))
+    return TurnedDown(unit_state(one, solution), "", left, throttle)
+
+
+def throttled_side(duty: Duty) -> str:
+    """The side that the control acts on: the one that the file names, else one that changes phase, else the cold one."""
+    changing = [name for name, side in duty.sides.items() if not side.has_ends]
+    return duty.throttled or (changing[0] if changing else "cold")
+
+
+def _moved(solved: Solved, side: str) -> str:
+    """What the control moves on a side."""
+    duty = solved.chain.calculation.duty
+    assert duty is not None
+    if duty.sides[side].has_ends:
+        return FLOW
+    return PRESSURE if solved.chain.streams[duty.sides[side].stream].pressure else TEMPERATURE
+
+
+def _other(side: str) -> str:
+    return "cold" if side == "hot" else "hot"
+
+
+# --- a flow -------------------------------------------------------------------------------------------
+
+
+def _flow(solved: Solved, duty: Duty, throttle: Throttle) -> tuple[Chain, dict[str, Array]]:
+    """The flow of a side at which the margin of area is nothing, its outlet open.
+
+    It is found by cutting ever smaller pieces of a range, all points of a round in one call.
+    """
+    side, other = throttle.side, _other(throttle.side)
+    flow = solved.chain.streams[duty.sides[side].stream].mass_flow
+    if f"C {side}" not in solved.chain.results or not flow:
+        raise _None(f"the {side} stream has no mass flow that could be turned down")
+    if duty.sides[other].open_end == "outlet":
+        raise _None(f"the outlet of the {other} stream is not stated")
+    chain = open_chain(solved, side)
+    if chain is None or "duty" not in chain.results:
+        raise _None(f"the duty does not follow from the {other} stream alone")
+    fixed = _stated_without_scale(solved, duty.sides[side].stream)
+    if fixed:
+        raise _None(f"the coefficient of {fixed} is stated, and nothing says how it follows the flow")
+    inputs = chain.case_inputs("")
+    stated = solved.base.solutions[SERVICE].number(flow)
+    low, high = SMALLEST_PART * stated, stated
+    _must_spare(_margins(chain, inputs, {flow: np.array([high])})[0], f"the stated {side} flow", "flow")
+    for _ in range(ROUNDS):
+        points = np.linspace(low, high, POINTS)
+        margins = _margins(chain, inputs, {flow: points})
+        below = np.flatnonzero(~(margins > 0.0))
+        if not len(below):
+            raise _None(f"the clean unit carries the duty at {SMALLEST_PART:.0%} of the {side} flow still")
+        low, high = points[below[-1]], points[below[-1] + 1]
+    if math.isnan(margins[below[-1]]):
+        raise _None(
+            f"the clean unit carries the duty down to a {side} flow at which its circuit does not close"
+        )
+    return chain, {flow: np.asarray(high)}
+
+
+def _must_spare(margin: float, where: str, what: str) -> None:
+    """Refuse to look for a state where the clean unit has nothing to spare as it stands."""
+    if math.isnan(margin):
+        raise _None(f"the circuit of the clean unit does not close at the duty and {where}")
+    if margin <= 0.0:
+        raise _None(f"the clean unit does not carry the duty with any {what} to spare")
 
 
 def _stated_without_scale(solved: Solved, stream: str) -> str:
@@ -90,8 +145,57 @@ def _stated_without_scale(solved: Solved, stream: str) -> str:
     return ""
 
 
-def _margins(chain: Chain, inputs: Mapping[str, Array], flow: str, flows: Array) -> Array:
-    """Margin of area of the clean unit over the duty at several cold flows; NaN where the duty cannot be had."""
-    one, given = with_figures(chain, inputs, {flow: flows})
+def _margins(chain: Chain, inputs: Mapping[str, Array], figures: Mapping[str, Array]) -> Array:
+    """Margin of area of the clean unit over the duty at several figures; NaN where the duty cannot be had."""
+    one, given = with_figures(chain, inputs, figures)
     solution = solve(one, given, CLEAN, keep=(one.results["area margin"],))
-    return np.broadcast_to(np.asarray(solution.values[one.results["area margin"]], dtype=float), flows.shape)
+    (shape,) = {np.shape(figure) for figure in figures.values()}
+    return np.broadcast_to(np.asarray(solution.values[one.results["area margin"]], dtype=float), shape)
+
+
+# --- a saturation -------------------------------------------------------------------------------------
+
+
+def _saturation(solved: Solved, duty: Duty, throttle: Throttle) -> tuple[Chain, dict[str, Array]]:
+    """The saturation temperature of a side, or the pressure that it follows from, at which the margin of area is
+    nothing: between the stated one and the outlet of the other stream."""
+    from scipy.optimize import brentq
+
+    side, other = throttle.side, _other(throttle.side)
+    if duty.sides[other].open_end == "outlet":
+        raise _None(f"the outlet of the {other} stream is not stated")
+    chain = open_chain(solved)
+    if chain is None or "duty" not in chain.results:
+        raise _None(f"the duty does not follow from the {other} stream alone")
+    stream, inputs = chain.streams[duty.sides[side].stream], chain.case_inputs("")
+    nominal = solved.base.solutions[SERVICE]
+    stated = nominal.number(stream.temperature)
+    end = nominal.number(chain.results[f"T {other} outlet"])
+
+    def margin(part: float) -> float:
+        figures = _at_saturation(stream, stated + part * (end - stated))
+        return float(_margins(chain, inputs, figures))
+
+    def closed_margin(part: float) -> float:
+        found = margin(part)
+        if math.isnan(found):
+            raise _Open
+        return found
+
+    _must_spare(margin(0.0), f"the stated {throttle.what}", "temperature difference")
+    try:
+        part = brentq(closed_margin, 0.0, LARGEST_PART, xtol=KNOWN / abs(end - stated))
+    except (_Open, PropertyFault):
+        way = "down" if side == "hot" else "up"
+        raise _None(
+            f"the clean unit carries the duty {way} to a {throttle.what} at which its circuit does not close"
+        ) from None
+    return chain, _at_saturation(stream, stated + part * (end - stated))
+
+
+def _at_saturation(stream: StreamState, temperature: float) -> dict[str, Array]:
+    """The figure from which a saturated stream has a temperature. Raises ``PropertyFault`` where it has none."""
+    if not stream.pressure:
+        return {stream.temperature: np.asarray(temperature)}
+    fluid = stream.fluid.state(None, None, stream.phase)
+    return {stream.pressure: np.asarray(fluid.saturation_pressure(temperature))}

@@ -47,6 +47,7 @@ def unit_state(chain: Chain, solution: Solution) -> UnitState:
             solution.number(chain.results[f"T {name} outlet"]),
             solution.number(speed) if speed in solution.values else math.nan,
             solution.number(group.surface_temperature),
+            solution.number(stream.pressure) if stream.pressure and not side.has_ends else math.nan,
         )
     return UnitState(solution.number(heat), solution.number(chain.results["U"]), sides)
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator
 
 from calcbook.chain.rating_outcome import DayOne, Parts, Rating, UnitState
@@ -48,3 +49,5 @@ def _state(name: str, state: UnitState) -> Figures:
         yield f"{name} / surface {side}", there.surface, kinds["temperature"]
         yield f"{name} / flow {side}", there.mass_flow, kinds["mass flow"]
         yield f"{name} / speed {side}", there.speed, kinds["speed"]
+        if math.isfinite(there.pressure):
+            yield f"{name} / pressure {side}", there.pressure, kinds["pressure"]

@@ -5,7 +5,16 @@ from __future__ import annotations
 import math
 
 from calcbook.chain.allowance import fouling_figures
-from calcbook.chain.rating_outcome import WITH_ALLOWANCES, DayOne, Parts, Rating, UnitState
+from calcbook.chain.plausible import THROTTLED_STEAM
+from calcbook.chain.rating_outcome import (
+    FLOW,
+    PRESSURE,
+    WITH_ALLOWANCES,
+    DayOne,
+    Parts,
+    Rating,
+    UnitState,
+)
 from calcbook.chain.types import Layer
 from calcbook.library import vocabulary
 from calcbook.quantities import in_unit
@@ -300,13 +309,12 @@ def day_one_blocks(page: Page) -> list[Block]:
         return []
     states = {WITH_ALLOWANCES: day.service, "clean": day.clean}
     if day.turned_down is not None:
-        states["clean, turned down to the stated hot outlet"] = day.turned_down
+        states[f"clean, turned down to the stated {day.throttle.other} outlet"] = day.turned_down
     blocks: list[Block] = [
         Heading(3, "Day one"),
         Paragraph(
             "The unit at the inlets of the duty, its outlets found by effectiveness: with its allowances, clean,"
-            " and clean with the cold flow turned down until the hot stream leaves as the duty states. Turning down the cold"
-            f" flow is one way of control, taken here for its bearing on deposits.{_base_alone(page)}"
+            f" and clean with {_control(page, day)}{_base_alone(page)}"
         ),
         Table(("Figure", *states), tuple(_state_rows(page, list(states.values())))),
     ]
@@ -346,6 +354,26 @@ def day_one_blocks(page: Page) -> list[Block]:
     return blocks
 
 
+def _control(page: Page, day: DayOne) -> str:
+    """What the control moves for the last state, and who says so."""
+    throttle = day.throttle
+    stream = _stream_of(page, throttle.side)
+    way = "turned down" if throttle.what == FLOW or throttle.side == "hot" else "raised"
+    moved = f"{throttle.side} flow" if throttle.what == FLOW else f"{throttle.what} of {stream}"
+    until = f"the {moved} {way} until the {throttle.other} stream leaves as the duty states."
+    if throttle.is_stated:
+        return f"{until} The file says that the control throttles the {throttle.side} side."
+    doing = "Turning down" if way == "turned down" else "Raising"
+    why = "for its bearing on deposits" if throttle.what == FLOW else "as the file names none"
+    return f"{until} {doing} the {moved} is one way of control, taken here {why}."
+
+
+def _stream_of(page: Page, side: str) -> str:
+    duty = page.calculation.duty
+    assert duty is not None
+    return duty.sides[side].stream
+
+
 def _state_rows(page: Page, states: list[UnitState]) -> list[tuple[str, ...]]:
     report, kinds = page.calculation.report, vocabulary()
 
@@ -365,7 +393,30 @@ def _state_rows(page: Page, states: list[UnitState]) -> list[tuple[str, ...]]:
         ]
         if any(math.isfinite(side.speed) for side in sides):
             rows.append(row(f"speed of the {name} stream", "speed", [side.speed for side in sides]))
+        if any(math.isfinite(side.pressure) for side in sides):
+            rows.append(row(f"pressure of the {name} stream", "pressure", [side.pressure for side in sides]))
     return rows
+
+
+def _throttled(page: Page, day: DayOne, state: UnitState) -> str:
+    """How far the control is throttled, in words."""
+    throttle, report, kinds = day.throttle, page.calculation.report, vocabulary()
+    if throttle.what == FLOW:
+        return f"{percent(day.flow_part)} of the {throttle.side} flow"
+    kind = kinds["pressure" if throttle.what == PRESSURE else "temperature"]
+    now, stated = (
+        in_report_unit(
+            one.sides[throttle.side].pressure
+            if throttle.what == PRESSURE
+            else one.sides[throttle.side].outlet,
+            kind,
+            report,
+            CONCLUSION_DIGITS,
+        )
+        for one in (state, day.service)
+    )
+    word = "an absolute pressure" if throttle.what == PRESSURE else f"a {throttle.what}"
+    return f"{word} of {now} of {_stream_of(page, throttle.side)} in place of {stated}"
 
 
 def _sentences(page: Page, day: DayOne) -> tuple[str, ...]:
@@ -382,16 +433,24 @@ def _sentences(page: Page, day: DayOne) -> tuple[str, ...]:
             " deposits faster on a hot surface starts there."
         )
     if day.turned_down is not None:
+        throttle, hotter = day.throttle, day.turned_down_hotter
         found.append(
-            f"With the stated hot outlet the clean unit runs at {percent(day.flow_part)} of the cold flow; the"
-            f" surface on the cold side then stands {kelvin(day.turned_down_hotter)} above that with the allowances."
+            f"With the stated {throttle.other} outlet the clean unit runs at {_throttled(page, day, day.turned_down)};"
+            f" the surface on the cold side then stands {kelvin(abs(hotter))} {'above' if hotter >= 0.0 else 'below'} that"
+            " with the allowances."
         )
-        if day.is_slow:
+        if any(check.id.endswith(THROTTLED_STEAM) for check in day.checks):
+            found.append(
+                "That pressure is below the atmosphere: the condensate does not leave by a trap, and the unit fills with it"
+                " until enough surface is covered, unless a pump draws it or air is let in. The smaller the allowances, the"
+                " higher that pressure."
+            )
+        if throttle.what == FLOW and day.is_slow:
             found.append(
                 "At that flow a speed lies outside its usual window: the allowances, on whichever side, breed"
-                " fouling on the cold side."
+                f" fouling on the {throttle.side} side."
             )
-        elif day.turned_down_hotter > HOTTER:
+        elif throttle.what == FLOW and throttle.side == "cold" and hotter > HOTTER:
             found.append(
                 "Less flow and a hotter surface both favour deposits on the cold side, whichever side the allowances stand"
                 " on."

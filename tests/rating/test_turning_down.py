@@ -1,0 +1,135 @@
+"""The clean unit under its control: what is found is put into a file of its own, without deposits, and rated anew."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import pytest
+from iapws import IAPWS97
+from rated_units import BY_TEMPERATURE, CHILLER, COOLER, HEATER, solved
+
+from calcbook.chain.outcome import Solved
+from calcbook.chain.rating_outcome import DayOne
+from calcbook.faults import Faults
+from calcbook.interface import record_text
+
+
+def day_of(answer: Solved) -> DayOne:
+    assert answer.rating is not None and answer.rating.day_one is not None
+    return answer.rating.day_one
+
+
+def without_deposits(text: str) -> str:
+    for allowance in ("0.00018 m^2 K/W", "0.00009 m^2 K/W", "0.00012 m^2 K/W"):
+        text = text.replace(allowance, "0 m^2 K/W")
+    return text
+
+
+def margin(folder: Path, text: str) -> float:
+    return solved(folder, without_deposits(text)).base.results["area_margin"].value
+
+
+def test_the_hot_flow_is_turned_down_where_the_file_says_so(tmp_path: Path) -> None:
+    text = COOLER.replace("duty:\n", "duty:\n  throttled: hot\n").replace(
+        "L:      {value: 4.88 m", "L: {value: 6 m"
+    )
+    day = day_of(solved(tmp_path, text))
+    assert day.turned_down is not None and day.throttle == ("hot", "flow", True)
+    flow = day.turned_down.sides["hot"].mass_flow
+    assert flow == pytest.approx(day.flow_part * 18.2) and 0.0 < flow < 18.2
+    # The cold stream carries its stated ends, the hot one leaves where its own flow takes it.
+    assert day.turned_down.sides["cold"].outlet == pytest.approx(273.15 + 34.6, rel=1e-12)
+    alone = text.replace("value: 18.2 kg/s", f"value: {flow!r} kg/s").replace(", outlet: T_ho", "")
+    alone = "\n".join(line for line in alone.splitlines() if not line.startswith("  T_ho:")) + "\n"
+    assert margin(tmp_path, alone) == pytest.approx(0.0, abs=1e-8)
+    assert margin(tmp_path, alone.replace(repr(flow), repr(0.999 * flow))) < 0.0
+
+
+def test_steam_is_throttled_to_the_pressure_at_which_the_clean_heater_gives_the_duty(tmp_path: Path) -> None:
+    answer = solved(tmp_path, HEATER)
+    day = day_of(answer)
+    assert day.turned_down is not None and day.throttle == ("hot", "pressure", False)
+    assert day.turned_down.heat == pytest.approx(answer.base.results["duty"].value, rel=1e-12)
+    hot = day.turned_down.sides["hot"]
+    # iapws, an implementation of IAPWS-IF97: saturation temperature of steam
+    assert hot.outlet == pytest.approx(IAPWS97(P=hot.pressure / 1e6, x=1.0).T, abs=0.002)
+    assert 66.0 + 273.15 < hot.outlet < day.clean.sides["hot"].outlet
+    pressure = f"{hot.pressure!r} Pa"
+    alone = HEATER.replace("2.6 bara", pressure)
+    assert margin(tmp_path, alone) == pytest.approx(0.0, abs=1e-8)
+    assert margin(tmp_path, HEATER.replace("2.6 bara", f"{0.999 * hot.pressure!r} Pa")) < 0.0
+
+
+def test_condensate_that_cannot_leave_is_told_with_the_pressure(tmp_path: Path) -> None:
+    """Common practice of steam heaters: below the atmosphere a trap does not pass the condensate."""
+    name = "stream steam / band / pressure of throttled steam"
+    answer = solved(tmp_path, HEATER)
+    pressure = day_of(answer).turned_down.sides["hot"].pressure  # type: ignore[union-attr]
+    found = [check for check in day_of(answer).checks if check.id == name]
+    assert [(check.condition, check.level, check.state) for check in found] == [
+        ("turned down", "caution", "outside")
+    ]
+    assert found[0].value == pressure < 101_325.0
+    page = record_text(answer)
+    assert "the condensate does not leave by a trap" in page
+    assert "clean with the pressure of steam turned down until the cold stream leaves" in page
+    assert f"- {name}, day one, turned down" in page
+    # With a smaller unit the steam stays above the atmosphere; and a condenser under vacuum has its pump.
+    for change in (("tubes: {value: 116", "tubes: {value: 84"), ("2.6 bara", "0.9 bara")):
+        day = day_of(solved(tmp_path, HEATER.replace(*change).replace("0.00018 m^2", "0.00004 m^2")))
+        assert day.turned_down is not None and not [check for check in day.checks if check.id == name]
+
+
+def test_a_stated_saturation_temperature_is_moved_itself(tmp_path: Path) -> None:
+    day = day_of(solved(tmp_path, BY_TEMPERATURE))
+    assert day.turned_down is not None and day.throttle == ("hot", "saturation temperature", False)
+    hot = day.turned_down.sides["hot"].outlet
+    alone = BY_TEMPERATURE.replace("128.7 degC", f"{hot!r} K")
+    assert margin(tmp_path, alone) == pytest.approx(0.0, abs=1e-8)
+    assert "turned down" in record_text(solved(tmp_path, BY_TEMPERATURE))
+
+
+def test_a_boiling_stream_is_raised(tmp_path: Path) -> None:
+    answer = solved(tmp_path, CHILLER)
+    day = day_of(answer)
+    assert day.turned_down is not None and day.throttle == ("cold", "saturation temperature", False)
+    cold = day.turned_down.sides["cold"].outlet
+    assert 273.15 - 4.0 < cold < 273.15 + 9.0
+    assert margin(tmp_path, CHILLER.replace("-4 degC", f"{cold!r} K")) == pytest.approx(0.0, abs=1e-8)
+    assert "saturation temperature of steam raised until the hot stream leaves" in record_text(answer)
+
+
+@pytest.mark.parametrize(
+    ("text", "reason"),
+    [
+        (HEATER.replace(", outlet: T_co", ""), ""),
+        (
+            HEATER.replace("tubes: {value: 116", "tubes: {value: 30"),
+            "with any temperature difference to spare",
+        ),
+        (
+            HEATER.replace("duty:\n", "duty:\n  throttled: cold\n"),
+            "does not follow from the hot stream alone",
+        ),
+        (COOLER.replace("duty:\n", "duty:\n  throttled: cold\n"), "shell-side film is stated"),
+        (
+            CHILLER.replace("duty:\n", "duty:\n  throttled: hot\n"),
+            "does not follow from the cold stream alone",
+        ),
+    ],
+)
+def test_a_unit_that_cannot_be_turned_down_says_why(tmp_path: Path, text: str, reason: str) -> None:
+    answer = solved(tmp_path, text)
+    if not reason:
+        # The duty is then what the unit reaches: nothing is turned down to it.
+        assert answer.rating is None
+        return
+    day = day_of(answer)
+    assert day.turned_down is None and reason in day.no_turn_down
+
+
+def test_the_key_takes_a_side(tmp_path: Path) -> None:
+    with pytest.raises(Faults) as caught:
+        solved(tmp_path, HEATER.replace("duty:\n", "duty:\n  throttled: hott\n"))
+    (fault,) = caught.value.faults
+    assert fault.nearest == ("hot",) and fault.place.line == HEATER.splitlines().index("duty:") + 2
