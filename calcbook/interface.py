@@ -20,7 +20,7 @@ from calcbook.library import CARDS, Library
 from calcbook.links import ISSUED, Links, Source
 from calcbook.rating.rate import rated
 from calcbook.uncertainty.flips import distances_to_flip
-from calcbook.uncertainty.sweep import axes_of, sweep_of
+from calcbook.uncertainty.sweep import axes_of, sweep_of, swept_names
 
 HOUSE_CARDS = "cards"
 # So many calculations may take from each other in a row before one is pinned to an issued revision.
@@ -152,6 +152,9 @@ def source_of(solved: Solved) -> Source:
 def _solved(
     calculation: Calculation, library: Library, collector: Collector, for_record: bool = True
 ) -> Solved | None:
+    if collector and calculation.figures_hold:
+        _faults_of_figures(calculation, library, collector)
+        return None
     chain = build(calculation, library, collector)
     if collector:
         # A card that cannot be read is missing to the calculation that names it.
@@ -162,6 +165,10 @@ def _solved(
         check_house_cards(chain, collector)
     axes = axes_of(chain, collector)
     solved = analyse(chain, collector)
+    if solved is not None and collector:
+        # An unknown result in one place keeps none from being told in the others.
+        swept_names(solved, collector)
+        _assessed(solved, collector)
     if solved is None or collector:
         return None
     solved = _surveyed(_assessed(_followed(rated(solved)), collector), collector)
@@ -174,6 +181,18 @@ def _solved(
         return solved
     solved = replace(solved, sweep=sweep_of(solved, axes, collector))
     return replace(solved, flips=distances_to_flip(solved)) if not collector else None
+
+
+def _faults_of_figures(calculation: Calculation, library: Library, collector: Collector) -> None:
+    """Add the faults of what a calculation gives to those of its text, which stand beside its figures."""
+    own = Collector()
+    try:
+        _solved(calculation, library, own, for_record=False)
+    except NotConverged:
+        # Told once the text holds.
+        return
+    finally:
+        collector.take(own)
 
 
 def _followed(solved: Solved) -> Solved:

@@ -417,7 +417,8 @@ class Calculation:
     """One calculation file, read. ``meaning`` is its canonical content, for the digest.
 
     ``broken`` are the symbols of givens and derived quantities that have a fault of their own and stand in
-    neither mapping.
+    neither mapping. ``figures_hold`` says that no fault of the text stands in a part that figures come from: the
+    calculation can be solved, so that faults of what it gives are told beside those.
     """
 
     file: str
@@ -481,6 +482,7 @@ class Calculation:
     cleaning: Cleaning | None = None
     survey: Survey | None = None
     sweep: SweepText | None = None
+    figures_hold: bool = True
 
 
 def unknown_symbol(symbol: str, place: Place, known: Sequence[str], instead: str = "") -> Fault:

@@ -39,6 +39,13 @@ def read_acceptance(reader: Reader) -> tuple[Criterion, ...]:
 def _probability(reader: Reader, fields: Fields) -> float:
     """The share of the samples in which a criterion must hold; NaN where none is asked for."""
     scalar = fields.scalar("probability")
+    if scalar is not None and "uncertainty" not in reader.fields:
+        reader.collector.add(
+            "key-missing",
+            scalar.place,
+            "a probability is counted over samples",
+            expected="uncertainty: … in the file, which draws them",
+        )
     quantity = reader.quantity(scalar) if scalar is not None else None
     if scalar is None or quantity is None:
         return math.nan
@@ -51,13 +58,6 @@ def _probability(reader: Reader, fields: Fields) -> float:
             expected="a share above 0 and not above 99.99 %, the most that samples can show, such as 95 %",
         )
         return math.nan
-    if "uncertainty" not in reader.fields:
-        reader.collector.add(
-            "key-missing",
-            scalar.place,
-            "a probability is counted over samples",
-            expected="uncertainty: … in the file, which draws them",
-        )
     return quantity.value
 
 

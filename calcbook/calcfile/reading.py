@@ -66,6 +66,10 @@ CLASHING_NAMES = frozenset(
 )
 CLASHING_STARTS = ("stream ", "case ", "fluid ", "assumption ", "word ", "unread ")
 AT_PLACE = "at "
+# Parts of a file that no figure comes from.
+BESIDE_FIGURES = frozenset(
+    ("calculation", "purpose", "revisions", "assumptions", "acceptance", "accept", "uncertainty", "sweep")
+)
 # Beyond these sizes (SI) a figure is a slip of the keyboard; working with it only breaks the arithmetic.
 SMALLEST, LARGEST = 1e-12, 1e11
 # A fouling rate is a small resistance over the seconds of months: slow ones lie below what else is a slip.
@@ -219,7 +223,19 @@ class Reader:
             cleaning=cleaning,
             survey=survey,
             sweep=read_sweep(self.fields.node("sweep"), givens, self.broken, self.quantity, self.collector),
+            figures_hold=self._figures_hold(),
         )
+
+    def _figures_hold(self) -> bool:
+        """Whether every fault stands in a part of the file from which no figure comes."""
+        root = self.document.root
+        keys = [key for key, _ in root.entries] if isinstance(root, MappingNode) else []
+        missing = {key.name for key in described.FILE.keys if key.required and key.name not in self.fields}
+        lines = [
+            fault.place.line if fault.place.file == self.document.name else 0 for fault in self.collector
+        ]
+        parts = {next((key.text for key in reversed(keys) if key.place.line <= line), "") for line in lines}
+        return BESIDE_FIGURES.issuperset(missing | parts)
 
     def meaning(self) -> object:
         """The content of the file, with that of the table files it names."""

@@ -117,6 +117,7 @@ def judged_later(solved: Solved, collector: Collector) -> Solved:
             criteria = analysis.criteria(case.name, results, case.solutions, found_later=True)
             case = replace(case, criteria=criteria)
         cases.append(case)
+    collector.take(analysis.judging)
     return replace(solved, cases=tuple(cases))
 
 
@@ -133,8 +134,8 @@ def keeps_what_is_found_later(chain: Chain, case: str) -> bool:
 def analyse(chain: Chain, collector: Collector) -> Solved | None:
     """Solve every case in both conditions and evaluate everything the record holds.
 
-    Faults of state (a liquid that is vapour, a wall turned inside out) and of acceptance go to the
-    collector; None is returned then. Raises ``NotConverged``.
+    Faults go to the collector: None is returned with those of state (a liquid that is vapour, a wall turned inside out),
+    and the figures with those of criteria and acceptances alone. Raises ``NotConverged``.
     """
     return _Analysis(chain, collector).solved()
 
@@ -143,6 +144,8 @@ class _Analysis:
     def __init__(self, chain: Chain, collector: Collector):
         self.chain = chain
         self.collector = collector
+        # Faults of what is asked of the figures, which are there all the same.
+        self.judging = Collector()
         self.dimensions = dict(chain.dimensions)
         self.used_cards: dict[str, str] = dict(chain.cards)
         self.inputs: dict[str, dict[str, np.ndarray]] = {}
@@ -168,9 +171,10 @@ class _Analysis:
             if case is None:
                 return None
             cases.append(case)
-        cases = self._with_acceptances(cases)
         if self.collector:
             return None
+        cases = self._with_acceptances(cases)
+        self.collector.take(self.judging)
         if self.chain.calculation.places:
             cases[0] = _with_mean(cases, self.chain.calculation.places)
         governing = _governing(cases, self.chain.calculation.places)
@@ -466,7 +470,7 @@ class _Analysis:
         elif start:
             where = " in its `duty:`" if criterion.result in OF_PARTS else ""
             message = f"`{name}` is found only where the file has `{LATER[start]}:`{where}"
-        self.collector.add(
+        self.judging.add(
             "result-unknown",
             criterion.place,
             message,
@@ -489,10 +493,10 @@ class _Analysis:
             )
             if not name:
                 known = self.chain.calculation.symbols
-                self.collector.take([unknown_symbol(value.symbol, value.place, known)])
+                self.judging.take([unknown_symbol(value.symbol, value.place, known)])
                 return None
             if self.dimensions.get(name) != kind.dimension:
-                self.collector.add(
+                self.judging.add(
                     "unit-dimension",
                     value.place,
                     f"`{value.symbol}` is no {kind.name}",
@@ -504,11 +508,11 @@ class _Analysis:
             if given is not None:
                 if self._read_limit(given.value.quantity, kind, value.place) is None:
                     return None
-                if kind.name == "ratio" and not given.value.is_share(criterion.result, self.collector):
+                if kind.name == "ratio" and not given.value.is_share(criterion.result, self.judging):
                     return None
             return solution.figure(name)
         assert value.quantity is not None, "a limit is a symbol or a quantity"
-        if kind.name == "ratio" and not value.is_share(criterion.result, self.collector):
+        if kind.name == "ratio" and not value.is_share(criterion.result, self.judging):
             return None
         limit = self._read_limit(value.quantity, kind, value.place)
         return np.asarray(limit) if limit is not None else None
@@ -519,13 +523,13 @@ class _Analysis:
         try:
             return as_kind(quantity, kind).value
         except QuantityFault as error:
-            self.collector.take([error.at(place)])
+            self.judging.take([error.at(place)])
             return None
 
     def _with_acceptances(self, cases: list[CaseOutcome]) -> list[CaseOutcome]:
         """Apply the file's acceptances over all cases at once, then add the open items that remain."""
         every = tuple(check for case in cases for check in case.checks)
-        settled = apply_acceptances(self.chain, every, self.collector)
+        settled = apply_acceptances(self.chain, every, self.judging)
         result, start = [], 0
         for case in cases:
             checks = settled[start : start + len(case.checks)]

@@ -52,7 +52,7 @@ def sweep_of(solved: Solved, axes: tuple[Axis, ...], collector: Collector) -> Sw
     """The sweep over the axes, None without any. A result that does not exist is a fault, result-unknown."""
     if not axes:
         return None
-    names = _names(solved, collector)
+    names = swept_names(solved, collector)
     inputs = dict(solved.chain.case_inputs(""))
     grids = np.meshgrid(*(np.array(axis.figures) for axis in axes), indexing="ij")
     for axis, grid in zip(axes, grids, strict=True):
@@ -66,8 +66,8 @@ def sweep_of(solved: Solved, axes: tuple[Axis, ...], collector: Collector) -> Sw
     )
 
 
-def _names(solved: Solved, collector: Collector) -> list[str]:
-    """The results asked for, else U and those that the acceptance names."""
+def swept_names(solved: Solved, collector: Collector) -> list[str]:
+    """The results asked for, else U and those that the acceptance names. Code: result-unknown."""
     text = solved.chain.calculation.sweep
     known = [name for name in solved.base.results if not is_found_later(name)]
     if text is None or not text.of:
@@ -75,12 +75,11 @@ def _names(solved: Solved, collector: Collector) -> list[str]:
         return [name for name in dict.fromkeys((*ALWAYS, *named)) if name in known]
     for name, place in text.of:
         if name not in known:
-            there = name in solved.base.results
             collector.add(
                 "result-unknown",
                 place,
                 f"`{shown(name)}` is found once for the calculation and cannot be swept"
-                if there
+                if is_found_later(name)
                 else f"there is no result `{shown(name)}`",
                 found=shown(name),
                 expected=", ".join(known),
