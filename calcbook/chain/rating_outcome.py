@@ -65,7 +65,8 @@ class UnitState(NamedTuple):
     sides: Mapping[str, SideState]
 
 
-# What a control moves on a side.
+# The state of the clean unit under its control, and what that moves on a side.
+TURNED_DOWN = "turned down"
 FLOW, PRESSURE, TEMPERATURE = "flow", "pressure", "saturation temperature"
 
 
@@ -124,17 +125,43 @@ class DayOne(NamedTuple):
     @property
     def is_slow(self) -> bool:
         """Whether a speed of the unit turned down lies outside its usual window."""
-        return any(check.condition == "turned down" and check.unit == "m/s" for check in self.checks)
+        return any(check.condition.startswith(TURNED_DOWN) and check.unit == "m/s" for check in self.checks)
+
+    def is_like(self, other: DayOne) -> bool:
+        """Whether the clean unit does the same as in another case, and leaves the same."""
+        return self._marks() == other._marks()
+
+    def _marks(self) -> tuple[str, list[tuple[str, str]]]:
+        # In words: figures that are not known are alike.
+        return repr((self.clean, self.turned_down)), [(check.id, check.figure) for check in self.checks]
 
 
 class Rating(NamedTuple):
-    """Everything that the rating of the base case adds to a solved calculation.
+    """Everything that the rating adds to a solved calculation: ledger and parts of the base case, and day one by case.
 
-    ``no_day_one`` says why the unit has no answer on day one; empty where it has one or none is asked for.
+    ``days`` holds for every case, the base case as an empty name, the clean unit or in words why it has no answer;
+    nothing where none is asked for.
     """
 
     ledger: tuple[LedgerRow, ...]
     ledger_sum: float
     parts: Parts | None
-    day_one: DayOne | None
-    no_day_one: str = ""
+    days: Mapping[str, DayOne | str]
+
+    @property
+    def answered(self) -> dict[str, DayOne]:
+        """Day one of every case in which the clean unit has an answer."""
+        return {case: day for case, day in self.days.items() if isinstance(day, DayOne)}
+
+    @property
+    def told(self) -> dict[str, DayOne]:
+        """Day one of the base case, and of those in which it is another one."""
+        days = self.answered
+        return {
+            case: day for case, day in days.items() if not case or "" not in days or not day.is_like(days[""])
+        }
+
+    @property
+    def unanswered(self) -> dict[str, str]:
+        """Why the clean unit has no answer, by case."""
+        return {case: day for case, day in self.days.items() if isinstance(day, str)}

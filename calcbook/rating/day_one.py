@@ -11,7 +11,7 @@ import numpy as np
 
 from calcbook.chain.completing import completed
 from calcbook.chain.findings import lacking_property, phases_not_checked
-from calcbook.chain.outcome import Solved
+from calcbook.chain.outcome import CaseOutcome, Solved
 from calcbook.chain.rating_outcome import WITH_ALLOWANCES, DayOne
 from calcbook.chain.solve import solve
 from calcbook.chain.types import CLEAN, SERVICE
@@ -20,17 +20,17 @@ from calcbook.rating.turning_down import turned_down
 from calcbook.rating.unit_states import judged, limits_of_duty, unit_state
 
 
-def day_one(solved: Solved) -> DayOne | str | None:
-    """The clean unit at the duty's inlets, or in words why it has no answer there.
+def day_one(solved: Solved, case: CaseOutcome) -> DayOne | str | None:
+    """The clean unit at the duty's inlets in a case, or in words why it has no answer there.
 
     None where a flow is missing that it takes, or nothing fouls.
     """
-    if not any(row.kind == "fouling" for row in solved.base.terms[SERVICE]):
+    if not any(row.kind == "fouling" for row in case.terms[SERVICE]):
         return None
-    chain = open_chain(solved, "hot", "cold")
+    chain = open_chain(solved.chain, case, "hot", "cold")
     if chain is None:
         return None
-    inputs = chain.case_inputs("")
+    inputs = chain.case_inputs(case.name)
     clean_chain = replace(
         chain, open_figures=tuple(replace(item, condition=CLEAN) for item in chain.open_figures)
     )
@@ -43,12 +43,13 @@ def day_one(solved: Solved) -> DayOne | str | None:
             return f"the circuit of {which} does not close at the inlets of the duty" + (
                 f": {why}" if why else ""
             )
+    where = f", case {case.name}" if case.name else ""
     clean, in_service = solutions[CLEAN], solutions[SERVICE]
-    turned = turned_down(solved)
+    turned = turned_down(solved.chain, case)
     with_allowances = tuple(
-        check._replace(condition=WITH_ALLOWANCES) for check in limits_of_duty(chain, in_service)
+        check._replace(condition=f"{WITH_ALLOWANCES}{where}") for check in limits_of_duty(chain, in_service)
     )
-    as_it_runs = judged(clean_chain, completed(clean_chain, inputs), clean, "clean")
+    as_it_runs = judged(clean_chain, completed(clean_chain, inputs), clean, f"clean{where}")
     service_state = unit_state(chain, in_service)
     clean_state = unit_state(clean_chain, clean)
     return DayOne(

@@ -130,7 +130,7 @@ def _heat_of(solved: Solved) -> tuple[Chain, str, str]:
     if chain.calculation.duty is None:
         return chain, chain.results.get("heat flow", ""), "at the stated bulk temperatures"
     if "duty" in chain.results:
-        opened = open_chain(solved, "hot", "cold")
+        opened = open_chain(solved.chain, solved.base, "hot", "cold")
         if opened is not None and "heat reached" in opened.results:
             chain = opened
         elif "heat reached" in chain.results:

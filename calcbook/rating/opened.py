@@ -2,26 +2,37 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping, Sequence
 from dataclasses import replace
 
 from calcbook.calcfile.calculation import DutySide, Value
 from calcbook.chain.build import build
-from calcbook.chain.outcome import Solved
+from calcbook.chain.outcome import CaseOutcome
 from calcbook.chain.types import SERVICE, Chain
 from calcbook.faults import Collector
 from calcbook.quantities import read_any
 
 
-def open_chain(solved: Solved, *sides: str) -> Chain | None:
+def open_chain(chain: Chain, case: CaseOutcome, *sides: str) -> Chain | None:
     """The calculation in one part, with the outlets of some sides open and the means of their ends; None where it has a
     fault.
 
-    An inlet that the file leaves open stays where it was found.
+    An inlet that the file leaves open stays where it was found in the case.
     """
-    before = solved.chain
+    duty = chain.calculation.duty
+    assert duty is not None
+    with_inlets = {name: _with_inlet(chain, case, name, side) for name, side in duty.sides.items()}
+    key = (open_chain, sides, "" if with_inlets == duty.sides else case.name)
+    if key not in chain.memory:
+        chain.memory[key] = _opened(chain, with_inlets, sides)
+    found: Chain | None = chain.memory[key]
+    return found
+
+
+def _opened(before: Chain, with_inlets: Mapping[str, DutySide], sides: Sequence[str]) -> Chain | None:
     calculation, duty = before.calculation, before.calculation.duty
     assert duty is not None
-    opened = {name: _with_inlet(solved, name, side) for name, side in duty.sides.items()}
+    opened = dict(with_inlets)
     opened |= {name: replace(opened[name], outlet=None) for name in sides}
     open_streams = {opened[name].stream for name in sides if opened[name].has_ends}
     streams = {
@@ -38,11 +49,11 @@ def open_chain(solved: Solved, *sides: str) -> Chain | None:
     return chain if chain is not None and not collector and (chain.open_figures or not sides) else None
 
 
-def _with_inlet(solved: Solved, name: str, side: DutySide) -> DutySide:
+def _with_inlet(chain: Chain, case: CaseOutcome, name: str, side: DutySide) -> DutySide:
     """A side with the inlet that was found for it, where the file states none."""
     if side.open_end != "inlet":
         return side
-    found = solved.base.solutions[SERVICE].number(solved.chain.results[f"T {name} inlet"])
+    found = case.solutions[SERVICE].number(chain.results[f"T {name} inlet"])
     text = f"{found!r} K"
     return replace(
         side, inlet=Value(text, side.place, quantity=read_any(text), source="found", has_source=True)

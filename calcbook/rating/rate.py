@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import replace
 
 from calcbook.chain.outcome import Solved
-from calcbook.chain.rating_outcome import Rating
+from calcbook.chain.rating_outcome import DayOne, Rating
 from calcbook.chain.types import OpenItem
 from calcbook.rating.day_one import day_one
 from calcbook.rating.ledger import ledger
@@ -17,11 +17,28 @@ def rated(solved: Solved) -> Solved:
     if "duty" not in solved.chain.results:
         return solved
     rows = ledger(solved)
-    along, first = parts(solved), day_one(solved)
-    day, reason = (None, first) if isinstance(first, str) else (first, "")
-    rating = Rating(rows, sum(row.area for row in rows), along, day, reason)
-    solved = replace(solved, rating=rating)
-    if reason:
-        item = OpenItem("day one", "check", f"Day one has no answer: {reason}.")
-        solved = solved.with_base(replace(solved.base, open_items=(*solved.base.open_items, item)))
+    along = parts(solved)
+    rating = Rating(rows, sum(row.area for row in rows), along, _days(solved))
+    cases = [
+        replace(case, open_items=(*case.open_items, *_open_items(rating, case.name))) for case in solved.cases
+    ]
+    solved = replace(solved, rating=rating, cases=tuple(cases))
     return with_parts(solved, along) if along is not None else solved
+
+
+def _days(solved: Solved) -> dict[str, DayOne | str]:
+    """Day one of every case that is no place along the unit."""
+    found = {
+        case.name: day_one(solved, case)
+        for case in solved.cases
+        if case.name not in solved.chain.calculation.places
+    }
+    return {name: day for name, day in found.items() if day is not None}
+
+
+def _open_items(rating: Rating, case: str) -> list[OpenItem]:
+    reason = rating.unanswered.get(case)
+    if not reason:
+        return []
+    where = f" in case {case}" if case else ""
+    return [OpenItem(f"day one{where}", "check", f"Day one has no answer{where}: {reason}.")]

@@ -12,11 +12,11 @@ from typing import NamedTuple
 
 import numpy as np
 
-from calcbook.calcfile.calculation import Duty
+from calcbook.calcfile.calculation import Duty, DutySide
 from calcbook.chain.completing import completed
-from calcbook.chain.outcome import Solved
+from calcbook.chain.outcome import CaseOutcome
 from calcbook.chain.plausible import throttled_steam
-from calcbook.chain.rating_outcome import FLOW, PRESSURE, TEMPERATURE, Throttle, UnitState
+from calcbook.chain.rating_outcome import FLOW, PRESSURE, TEMPERATURE, TURNED_DOWN, Throttle, UnitState
 from calcbook.chain.solve import solve
 from calcbook.chain.types import CLEAN, SERVICE, Chain, StreamState
 from calcbook.chain.variants import with_figures
@@ -25,7 +25,6 @@ from calcbook.rating.opened import open_chain
 from calcbook.rating.unit_states import NOTHING, Judged, judged, unit_state
 
 Array = np.ndarray
-TURNED_DOWN = "turned down"
 # A flow is looked for down to this part of the stated one.
 SMALLEST_PART = 0.02
 POINTS, ROUNDS = 41, 6
@@ -51,24 +50,25 @@ class _Open(Exception):
     """The circuit does not close at a figure of the search."""
 
 
-def turned_down(solved: Solved) -> TurnedDown:
+def turned_down(chain: Chain, case: CaseOutcome) -> TurnedDown:
     """The clean unit with its control throttled until it gives the duty; or why there is none."""
-    duty = solved.chain.calculation.duty
+    duty = chain.calculation.duty
     assert duty is not None
     side = throttled_side(duty)
-    throttle = Throttle(side, _moved(solved, side), bool(duty.throttled))
+    throttle = Throttle(side, _moved(chain, duty.sides[side]), bool(duty.throttled))
     try:
-        chain, figures = (_flow if throttle.what == FLOW else _saturation)(solved, duty, throttle)
+        opened, figures = (_flow if throttle.what == FLOW else _saturation)(chain, case, duty, throttle)
     except _None as reason:
         return TurnedDown(None, str(reason), NOTHING, throttle)
-    one, given = with_figures(chain, chain.case_inputs(""), figures)
+    one, given = with_figures(opened, opened.case_inputs(case.name), figures)
     given = completed(one, given)
     solution = solve(one, given, CLEAN)
-    left = judged(one, given, solution, TURNED_DOWN)
+    state = f"{TURNED_DOWN}, case {case.name}" if case.name else TURNED_DOWN
+    left = judged(one, given, solution, state)
     if throttle.what != FLOW:
         stream = one.streams[duty.sides[side].stream]
-        checks = throttled_steam(stream, solved.base.solutions[SERVICE], solution)
-        left = left._replace(checks=left.checks + tuple(c._replace(condition=TURNED_DOWN) for c in checks))
+        checks = throttled_steam(stream, case.solutions[SERVICE], solution)
+        left = left._replace(checks=left.checks + tuple(check._replace(condition=state) for check in checks))
     return TurnedDown(unit_state(one, solution), "", left, throttle)
 
 
@@ -78,13 +78,11 @@ def throttled_side(duty: Duty) -> str:
     return duty.throttled or (changing[0] if changing else "cold")
 
 
-def _moved(solved: Solved, side: str) -> str:
+def _moved(chain: Chain, side: DutySide) -> str:
     """What the control moves on a side."""
-    duty = solved.chain.calculation.duty
-    assert duty is not None
-    if duty.sides[side].has_ends:
+    if side.has_ends:
         return FLOW
-    return PRESSURE if solved.chain.streams[duty.sides[side].stream].pressure else TEMPERATURE
+    return PRESSURE if chain.streams[side.stream].pressure else TEMPERATURE
 
 
 def _other(side: str) -> str:
@@ -94,25 +92,25 @@ def _other(side: str) -> str:
 # --- a flow -------------------------------------------------------------------------------------------
 
 
-def _flow(solved: Solved, duty: Duty, throttle: Throttle) -> tuple[Chain, dict[str, Array]]:
+def _flow(before: Chain, case: CaseOutcome, duty: Duty, throttle: Throttle) -> tuple[Chain, dict[str, Array]]:
     """The flow of a side at which the margin of area is nothing, its outlet open.
 
     It is found by cutting ever smaller pieces of a range, all points of a round in one call.
     """
     side, other = throttle.side, _other(throttle.side)
-    flow = solved.chain.streams[duty.sides[side].stream].mass_flow
-    if f"C {side}" not in solved.chain.results or not flow:
+    flow = before.streams[duty.sides[side].stream].mass_flow
+    if f"C {side}" not in before.results or not flow:
         raise _None(f"the {side} stream has no mass flow that could be turned down")
     if duty.sides[other].open_end == "outlet":
         raise _None(f"the outlet of the {other} stream is not stated")
-    chain = open_chain(solved, side)
+    chain = open_chain(before, case, side)
     if chain is None or "duty" not in chain.results:
         raise _None(f"the duty does not follow from the {other} stream alone")
-    fixed = _stated_without_scale(solved, duty.sides[side].stream)
+    fixed = _stated_without_scale(before, duty.sides[side].stream)
     if fixed:
         raise _None(f"the coefficient of {fixed} is stated, and nothing says how it follows the flow")
-    inputs = chain.case_inputs("")
-    stated = solved.base.solutions[SERVICE].number(flow)
+    inputs = chain.case_inputs(case.name)
+    stated = case.solutions[SERVICE].number(flow)
     low, high = SMALLEST_PART * stated, stated
     _must_spare(_margins(chain, inputs, {flow: np.array([high])})[0], f"the stated {side} flow", "flow")
     for _ in range(ROUNDS):
@@ -137,9 +135,9 @@ def _must_spare(margin: float, where: str, what: str) -> None:
         raise _None(f"the clean unit does not carry the duty with any {what} to spare")
 
 
-def _stated_without_scale(solved: Solved, stream: str) -> str:
+def _stated_without_scale(chain: Chain, stream: str) -> str:
     """The film of a stream whose stated coefficient stays as it is at another flow; empty where there is none."""
-    for term in solved.chain.calculation.resistances:
+    for term in chain.calculation.resistances:
         if term.texts.get("stream") == stream and "coefficient" in term.values and term.scales_with is None:
             return term.name
     return ""
@@ -156,7 +154,9 @@ def _margins(chain: Chain, inputs: Mapping[str, Array], figures: Mapping[str, Ar
 # --- a saturation -------------------------------------------------------------------------------------
 
 
-def _saturation(solved: Solved, duty: Duty, throttle: Throttle) -> tuple[Chain, dict[str, Array]]:
+def _saturation(
+    before: Chain, case: CaseOutcome, duty: Duty, throttle: Throttle
+) -> tuple[Chain, dict[str, Array]]:
     """The saturation temperature of a side, or the pressure that it follows from, at which the margin of area is
     nothing: between the stated one and the outlet of the other stream."""
     from scipy.optimize import brentq
@@ -164,11 +164,11 @@ def _saturation(solved: Solved, duty: Duty, throttle: Throttle) -> tuple[Chain, 
     side, other = throttle.side, _other(throttle.side)
     if duty.sides[other].open_end == "outlet":
         raise _None(f"the outlet of the {other} stream is not stated")
-    chain = open_chain(solved)
+    chain = open_chain(before, case)
     if chain is None or "duty" not in chain.results:
         raise _None(f"the duty does not follow from the {other} stream alone")
-    stream, inputs = chain.streams[duty.sides[side].stream], chain.case_inputs("")
-    nominal = solved.base.solutions[SERVICE]
+    stream, inputs = chain.streams[duty.sides[side].stream], chain.case_inputs(case.name)
+    nominal = case.solutions[SERVICE]
     stated = nominal.number(stream.temperature)
     end = nominal.number(chain.results[f"T {other} outlet"])
 

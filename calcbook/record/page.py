@@ -49,13 +49,14 @@ class Page:
         return bool(self.solved.open_items)
 
     @property
-    def day_one(self) -> DayOne | None:
-        """What the clean unit does at the same inlets; None without a rating that tells it."""
-        return self.solved.rating.day_one if self.solved.rating is not None else None
+    def days(self) -> dict[str, DayOne]:
+        """What the clean unit does at the same inlets, by case; nothing without a rating that tells it."""
+        return self.solved.rating.answered if self.solved.rating is not None else {}
 
-    def missed_on_day_one(self) -> tuple[CriterionResult, ...]:
-        """The criteria that the clean unit does not meet at the same inlets, each with its state as the case."""
-        return tuple(item for item in (self.day_one.criteria if self.day_one else ()) if not item.met)
+    def missed_on_day_one(self, case: str) -> tuple[CriterionResult, ...]:
+        """The criteria that the clean unit does not meet at the inlets of a case, each with its state as the case."""
+        day = self.days.get(case)
+        return tuple(item for item in (day.criteria if day is not None else ()) if not item.met)
 
     @property
     def has_cases(self) -> bool:

@@ -19,8 +19,8 @@ def rating_figures(rating: Rating) -> Figures:
         yield f"ledger / {row.name}", row.area, kinds["area"]
     if rating.parts is not None:
         yield from _parts(rating.parts)
-    if rating.day_one is not None:
-        yield from _day_one(rating.day_one)
+    for case, day in rating.told.items():
+        yield from _day_one(day, f" in case {case}" if case else "")
 
 
 def _parts(parts: Parts) -> Figures:
@@ -33,11 +33,11 @@ def _parts(parts: Parts) -> Figures:
         yield f"parts / area {condition}", area, kinds["area"]
 
 
-def _day_one(day: DayOne) -> Figures:
+def _day_one(day: DayOne, where: str) -> Figures:
     states = {"with the allowances": day.service, "clean": day.clean, "turned down": day.turned_down}
     for name, state in states.items():
         if state is not None:
-            yield from _state(f"day one / {name}", state)
+            yield from _state(f"day one{where} / {name}", state)
 
 
 def _state(name: str, state: UnitState) -> Figures:

@@ -226,7 +226,9 @@ def test_an_inlet_by_heat_balance(tmp_path: Path, side: str, ends: str, given: s
     assert f"T_{side}_inlet" not in answer.base.results
     for name in ("U_service", "area_service", "LMTD", "heat_reached_service", "area_margin_clean"):
         assert figure(found, name) == pytest.approx(figure(answer, name), rel=1e-11), name
-    assert found.rating.day_one.clean.heat == pytest.approx(answer.rating.day_one.clean.heat, rel=1e-10)
+    assert found.rating.answered[""].clean.heat == pytest.approx(
+        answer.rating.answered[""].clean.heat, rel=1e-10
+    )
 
 
 @pytest.mark.parametrize(("length", "effectiveness"), [("0.001 mm", 0.0), ("90 km", 1.0)])
@@ -311,7 +313,7 @@ def test_a_unit_that_is_too_small_has_an_allowance_below_zero(tmp_path: Path) ->
 def test_day_one_is_the_clean_unit_with_open_outlets(tmp_path: Path) -> None:
     fouled = solved(tmp_path, fouling="0.0003 m^2 K/W", length="900 m")
     clean = solved(tmp_path, length="900 m", hot_outlet="")
-    day = fouled.rating.day_one
+    day = fouled.rating.answered[""]
     assert day is not None and day.turned_down is not None
     assert day.clean.heat == pytest.approx(figure(clean, "heat_reached_service"), rel=1e-10)
     assert day.clean.heat > day.service.heat > figure(fouled, "duty")
@@ -332,7 +334,7 @@ def test_a_cold_stream_whose_properties_end_first_is_not_turned_down(tmp_path: P
     )
     path = tmp_path / "rt-1.yaml"
     path.write_text(text.replace(constants, table), encoding="utf-8")
-    day = solve_file(path).rating.day_one
+    day = solve_file(path).rating.answered[""]
     assert day is not None and day.turned_down is None
     assert (
         day.no_turn_down
@@ -363,7 +365,7 @@ def test_a_fluid_that_is_written_in_place_is_called_by_its_stream(tmp_path: Path
 
 
 def test_a_stated_film_that_knows_no_flow_is_not_turned_down() -> None:
-    day = solve_file(RATED).rating.day_one
+    day = solve_file(RATED).rating.answered[""]
     assert day is not None and day.turned_down is None
     assert (
         day.no_turn_down

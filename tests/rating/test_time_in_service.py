@@ -228,8 +228,8 @@ def test_the_duty_is_lost_where_the_margin_is_nothing_and_the_heat_is_the_duty(
     assert 8 * 365.25 / 12 * DAY < lost < 10 * 365.25 / 12 * DAY
     alone = solved(tmp_path, COOLER.replace("value: 6 months", f"value: {lost!r} s"))
     assert alone.base.results["area_margin"].value == pytest.approx(0.0, abs=1e-9)
-    assert alone.rating is not None and alone.rating.day_one is not None
-    assert alone.rating.day_one.service.heat == pytest.approx(alone.base.results["duty"].value, rel=1e-8)
+    assert alone.rating is not None and "" in alone.rating.answered
+    assert alone.rating.answered[""].service.heat == pytest.approx(alone.base.results["duty"].value, rel=1e-8)
 
 
 def test_words_where_no_duty_is_lost(tmp_path: Path) -> None:

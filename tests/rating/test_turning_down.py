@@ -15,8 +15,8 @@ from calcbook.interface import record_text
 
 
 def day_of(answer: Solved) -> DayOne:
-    assert answer.rating is not None and answer.rating.day_one is not None
-    return answer.rating.day_one
+    assert answer.rating is not None and "" in answer.rating.answered
+    return answer.rating.answered[""]
 
 
 def without_deposits(text: str) -> str:
@@ -133,3 +133,35 @@ def test_the_key_takes_a_side(tmp_path: Path) -> None:
         solved(tmp_path, HEATER.replace("duty:\n", "duty:\n  throttled: hott\n"))
     (fault,) = caught.value.faults
     assert fault.nearest == ("hot",) and fault.place.line == HEATER.splitlines().index("duty:") + 2
+
+
+CASES = """\
+cases:
+  winter: {T_ci: {value: 6 degC, source: s}}
+  summer: {T_ci: {value: 24 degC, source: s}}
+  heavy deposit: {R_f: {value: 0.0003 m^2 K/W, source: s}}
+"""
+
+
+def test_every_case_has_its_own_day_one(tmp_path: Path) -> None:
+    """A case has the day one of a file in which its figures are those of the base case."""
+    answer = solved(tmp_path, HEATER + CASES)
+    assert answer.rating is not None and list(answer.rating.days) == ["", "winter", "summer", "heavy deposit"]
+    base, winter, summer, heavy = answer.rating.answered.values()
+    alone = day_of(solved(tmp_path, HEATER.replace("T_ci: {value: 18 degC", "T_ci: {value: 6 degC")))
+    assert winter.turned_down is not None and alone.turned_down is not None
+    for side in ("hot", "cold"):
+        assert winter.clean.sides[side][1:] == pytest.approx(
+            alone.clean.sides[side][1:], rel=1e-9, nan_ok=True
+        )
+        assert winter.turned_down.sides[side][1:] == pytest.approx(
+            alone.turned_down.sides[side][1:], rel=1e-9, nan_ok=True
+        )
+    # The clean unit has no deposit: with a heavier one it does the same.
+    assert heavy.is_like(base) and not winter.is_like(base)
+    # The colder the water, the more heat and the hotter the steam.
+    assert not winter.checks and {check.condition for check in summer.checks} == {"turned down, case summer"}
+    page = record_text(answer)
+    assert "#### Day one in case winter" in page
+    assert "In case heavy deposit the clean unit does what it does in the base case." in page
+    assert "day one, turned down, case summer: p = " in page

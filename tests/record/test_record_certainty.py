@@ -138,7 +138,7 @@ def test_a_deposit_is_told_of_the_side_it_stands_on() -> None:
 def test_a_criterion_on_a_clean_surface_is_judged_on_day_one_too() -> None:
     """Against the surface by hand: T_co + U_clean·(T_hi − T_co)/h_o, with U at the means and the coefficient of the
     shell side at its flow, (m/m_ref)^0.6. U at the hot end is some 1 % above that at the means: 0.3 K here."""
-    day = solve_file(CALCS / "wc-105.yaml", for_record=False).rating.day_one
+    day = solve_file(CALCS / "wc-105.yaml", for_record=False).rating.answered[""]
     clean, turned_down = (item for item in day.criteria if item.id == "criterion 2")
     for item, state in ((clean, day.clean), (turned_down, day.turned_down)):
         coefficient = 5200.0 * (state.sides["cold"].mass_flow / 20.6) ** 0.6

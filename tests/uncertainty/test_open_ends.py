@@ -110,7 +110,7 @@ def test_a_criterion_on_a_surface_that_is_not_known_is_not_met(tmp_path: Path) -
     warm, icy = (solved(tmp_path, cold, asked) for cold in (WARM, ICY))
     assert [one.base.criteria[0].met for one in (warm, icy)] == [True, False]
     words = "not known: the circuit does not close there"
-    day = icy.rating.day_one
+    day = icy.rating.answered[""]
     assert day is not None
     (clean,) = day.criteria
     assert icy.base.criteria[0].words == clean.words == words and not clean.met

@@ -65,8 +65,8 @@ def _within_a_tolerance(item: CriterionResult, page: Page) -> str:
 
 def _on_day_one(item: CriterionResult, page: Page) -> str:
     """The states of the clean unit at the same inlets in which a criterion that is met here is not."""
-    failed = [one.case for one in page.missed_on_day_one() if one.id == item.id]
-    return f"; not met on day one: {', '.join(failed)}" if failed and item.met and not item.case else ""
+    failed = [one.case for one in page.missed_on_day_one(item.case) if one.id == item.id]
+    return f"; not met on day one: {', '.join(failed)}" if failed and item.met else ""
 
 
 def _of_pressure_drop(item: CriterionResult, page: Page) -> str:

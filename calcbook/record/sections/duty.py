@@ -99,7 +99,7 @@ def _arrangement(page: Page) -> list[tuple[str, str, str]]:
 
 def _reached_basis(page: Page) -> str:
     """What the heat that is reached rests on, and whether a saturated stream has that much."""
-    day = page.day_one
+    day = page.days.get("")
     words = "effectiveness, from the same inlets"
     left = [check for check in (day.checks if day is not None else ()) if check.condition == WITH_ALLOWANCES]
     return f"{words}; {left[0].id}: {left[0].figure}, limit {left[0].limit}, outside" if left else words
@@ -301,21 +301,34 @@ def _base_alone(page: Page) -> str:
 
 
 def day_one_blocks(page: Page) -> list[Block]:
-    """The clean unit at the inlets of the duty, where there is a duty and something fouls."""
-    rating, day = page.solved.rating, page.day_one
-    if rating is not None and rating.no_day_one:
-        return [Heading(3, "Day one"), Paragraph(f"Day one has no answer: {rating.no_day_one}.")]
-    if day is None:
+    """The clean unit at the inlets of the duty in every case, where there is a duty and something fouls."""
+    rating = page.solved.rating
+    if rating is None or not rating.days:
         return []
+    blocks: list[Block] = [Heading(3, "Day one")]
+    for case, day in rating.days.items():
+        where = f" in case {case}" if case else ""
+        if isinstance(day, str):
+            blocks.append(Paragraph(f"Day one has no answer{where}: {day}."))
+        elif case not in rating.told:
+            blocks.append(Paragraph(f"In case {case} the clean unit does what it does in the base case."))
+        else:
+            blocks += [*([Heading(4, f"Day one{where}")] if case else []), *_day_blocks(page, day, case)]
+    return blocks
+
+
+def _day_blocks(page: Page, day: DayOne, case: str) -> list[Block]:
     states = {WITH_ALLOWANCES: day.service, "clean": day.clean}
     if day.turned_down is not None:
         states[f"clean, turned down to the stated {day.throttle.other} outlet"] = day.turned_down
+    what = (
+        f"The same states at the inlets of case {case}."
+        if case and "" in page.days
+        else "The unit at the inlets of the duty, its outlets found by effectiveness: with its allowances, clean,"
+        f" and clean with {_control(page, day)}"
+    )
     blocks: list[Block] = [
-        Heading(3, "Day one"),
-        Paragraph(
-            "The unit at the inlets of the duty, its outlets found by effectiveness: with its allowances, clean,"
-            f" and clean with {_control(page, day)}{_base_alone(page)}"
-        ),
+        Paragraph(what),
         Table(("Figure", *states), tuple(_state_rows(page, list(states.values())))),
     ]
     if day.turned_down is None:

@@ -202,7 +202,7 @@ def _named(items: Sequence[CriterionResult]) -> str:
 
 
 def _failed_on_day_one(page: Page) -> list[str]:
-    failed = [f"{item.id}, {item.case}" for item in page.missed_on_day_one()]
+    failed = [f"{item.id}, {item.case}" for case in page.days for item in page.missed_on_day_one(case)]
     return [f"Not met on day one: {'; '.join(failed)}."] if failed else []
 
 
@@ -482,11 +482,14 @@ def _survey(page: Page) -> list[str]:
 
 def _day_one(page: Page) -> list[str]:
     """What the unit leaves at the inlets of the duty, and the criteria that it does not meet there."""
-    day = page.day_one
-    left = [
-        f"{check.id}, day one, {check.condition}: {check.figure}, limit {check.limit}: {verdict(check)}."
-        for check in (day.checks if day is not None else ())
-    ]
-    return left + [
-        f"{item.id} is not met on day one, {item.case}: {item.that}." for item in page.missed_on_day_one()
-    ]
+    words = []
+    for case, day in page.days.items():
+        words += [
+            f"{check.id}, day one, {check.condition}: {check.figure}, limit {check.limit}: {verdict(check)}."
+            for check in day.checks
+        ]
+        words += [
+            f"{item.id} is not met on day one, {item.case}: {item.that}."
+            for item in page.missed_on_day_one(case)
+        ]
+    return words
