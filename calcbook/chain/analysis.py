@@ -15,7 +15,7 @@ from calcbook.chain.completing import completed
 from calcbook.chain.criteria import criterion_margin, is_met
 from calcbook.chain.cross_check import cross_check
 from calcbook.chain.duty import OWNER as DUTY
-from calcbook.chain.ends import EndState, closed_ends, end_checks, end_states
+from calcbook.chain.ends import OPEN_END, EndState, closed_ends, end_checks, end_states
 from calcbook.chain.figures import (
     ResultFigures,
     allowance_figures,
@@ -657,9 +657,15 @@ def _single(figures: Mapping[str, ResultFigures]) -> dict[str, Result]:
 
 
 def _open_checks(checks: tuple[CheckResult, ...]) -> list[OpenItem]:
-    """Range limits that are outside or cannot be evaluated, and stop limits that cannot."""
+    """Range limits that are outside or cannot be evaluated, and stop limits that cannot.
+
+    Where the circuit does not close at an end, that is one item, with what cannot be evaluated there for it.
+    """
     items: dict[str, OpenItem] = {}
+    told: set[tuple[str, str]] = set()
     for check in checks:
+        if (check.id, check.condition) in told:
+            continue
         blocking = check.level == "range" and check.state in ("outside", "not evaluable")
         blocking |= check.level == "stop" and check.state == "not evaluable"
         if not blocking:
@@ -667,8 +673,24 @@ def _open_checks(checks: tuple[CheckResult, ...]) -> list[OpenItem]:
         where = f"case {check.case}, {check.condition}" if check.case else check.condition
         beyond = f"; {check.accepted}" if check.accepted else ""
         text = f"{check.id} ({where}): {check.figure}, limit {check.limit}: {check.state}{beyond}."
+        if check.id.startswith(OPEN_END):
+            others = _not_evaluable_with(check, checks)
+            told |= {(name, check.condition) for name in others}
+            text += f" Not evaluable with it: {', '.join(others)}." if others else ""
         items.setdefault(f"{check.id} / {where}", OpenItem(f"{check.id} / {where}", "check", text))
     return list(items.values())
+
+
+def _not_evaluable_with(circuit: CheckResult, checks: tuple[CheckResult, ...]) -> list[str]:
+    """The checks at the walls of an end that cannot be evaluated as its circuit does not close."""
+    place = circuit.id.removeprefix(OPEN_END)
+    return [
+        check.id
+        for check in checks
+        if check.id.endswith(place)
+        and check.id != circuit.id
+        and (check.condition, check.state) == (circuit.condition, circuit.state)
+    ]
 
 
 def _with_mean(cases: list[CaseOutcome], places: tuple[str, ...]) -> CaseOutcome:
