@@ -60,7 +60,7 @@ OWNERS = {
     "rich": {"commands", "book"},
     "platformdirs": {"properties", "book"},
     "markdown_it": {"record"},
-    "scipy": {"formulas", "chain", "uncertainty"},
+    "scipy": {"formulas", "chain", "rating", "uncertainty"},
     "numpy": {
         *(
             "formulas",

@@ -231,9 +231,9 @@ class Reader:
         root = self.document.root
         keys = [key for key, _ in root.entries] if isinstance(root, MappingNode) else []
         missing = {key.name for key in described.FILE.keys if key.required and key.name not in self.fields}
-        lines = [
-            fault.place.line if fault.place.file == self.document.name else 0 for fault in self.collector
-        ]
+        # A fault that names no line (of a link, say) is of the whole.
+        places = [fault.place for fault in self.collector]
+        lines = [place.line if place.excerpt and place.file == self.document.name else 0 for place in places]
         parts = {next((key.text for key in reversed(keys) if key.place.line <= line), "") for line in lines}
         return BESIDE_FIGURES.issuperset(missing | parts)
 
