@@ -14,7 +14,7 @@ from calcbook.book.entries import read_entries
 from calcbook.book.finding import find_calculations
 from calcbook.commands import main
 from calcbook.faults import Collector, Faults
-from calcbook.interface import solve_file
+from calcbook.interface import record_text, solve_file
 from calcbook.library.errata import Erratum, read_errata
 
 ROOT = Path(__file__).resolve().parents[2]
@@ -52,6 +52,8 @@ def test_a_given_takes_the_figure_of_its_source(book: Path) -> None:
     given = fed.chain.calculation.givens["T_hot"]
     assert given.link is not None and given.link.revision == "B"
     assert given.source.startswith("calculation S-1 revision B, T inside surface service, digest ")
+    words = "T_hot is a result of calculation S-1; what that says of its uncertainty does not come with it"
+    assert words in record_text(fed) and "does not come with it" not in record_text(source)
 
 
 @pytest.mark.parametrize(("revision", "told"), [("", "unpinned"), (", revision: A", "issued")])

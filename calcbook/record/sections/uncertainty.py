@@ -29,7 +29,7 @@ def uncertainty(page: Page) -> list[Block]:
     heading = Heading(3, "Uncertainty")
     if found is None:
         return [heading, Paragraph("No tolerance is stated; no uncertainty of a result is given.")]
-    blocks: list[Block] = [heading, *_what_is_in_it(found), _summary(found, page)]
+    blocks: list[Block] = [heading, *_what_is_in_it(found, page), _summary(found, page)]
     cautions = _cautions(found)
     if cautions:
         blocks.append(Bullets(cautions))
@@ -126,7 +126,7 @@ def _lacking(terms: tuple[str, ...], words: str) -> str:
 # --- what it is made of -----------------------------------------------------------------------------
 
 
-def _what_is_in_it(found: Uncertainty) -> list[Block]:
+def _what_is_in_it(found: Uncertainty, page: Page) -> list[Block]:
     words = (
         f"First-order propagation (JCGM 100:2008, 5.1.2) in {_case(found)}, from the tolerances of the givens and"
         " the accuracy of the methods; slopes are those of the relations. The accuracy of a method is a factor B"
@@ -136,6 +136,7 @@ def _what_is_in_it(found: Uncertainty) -> list[Block]:
         "Figures without a tolerance count as exact, among them the properties of fluids and the conductivities"
         " of material cards.",
         *_allowances(found),
+        *_linked(page),
         *(
             f"{item.term}: the part of the method {item.card} is missing: {item.reason}."
             for item in found.left_out
@@ -161,6 +162,16 @@ def _correlated_samples(found: Uncertainty) -> list[str]:
 
 def _case(found: Uncertainty) -> str:
     return f"case {found.case}" if found.case else "the base case"
+
+
+def _linked(page: Page) -> list[str]:
+    """The figures that come from other calculations without what those say of their uncertainty."""
+    return [
+        f"{written_name(given.symbol)} is a result of calculation {given.link.calculation}; what that says of its"
+        " uncertainty does not come with it, and no tolerance is stated here."
+        for given in page.calculation.givens.values()
+        if given.link is not None and given.tolerance is None
+    ]
 
 
 def _allowances(found: Uncertainty) -> list[str]:
