@@ -179,7 +179,7 @@ class _Analysis:
             cases[0] = _with_mean(cases, self.chain.calculation.places)
         governing = _governing(cases, self.chain.calculation.places)
         # Other methods are held where the verdicts are decided, beside the base case.
-        crossed = {case.name: case for case in (cases[0], governing or cases[0])}
+        crossed = {case.name: case for case in (cases[0], *governing.values())}
         cross = cross_check(self.chain, list(crossed.values()), self.dimensions)
         return Solved(
             self.chain,
@@ -187,7 +187,7 @@ class _Analysis:
             cross,
             self._sensitivity(cases[0]),
             self.used_cards,
-            (governing.name or "base") if governing is not None else "",
+            {name: case.name for name, case in governing.items()},
         )
 
     def _figures_are_found(self) -> bool:
@@ -723,14 +723,19 @@ def _with_mean(cases: list[CaseOutcome], places: tuple[str, ...]) -> CaseOutcome
     return replace(base, results=results, open_items=tuple(items))
 
 
-def _governing(cases: list[CaseOutcome], places: tuple[str, ...]) -> CaseOutcome | None:
-    """The case with the smallest margin of the first criterion, else with the lowest U in service; None of one alone.
+def _governing(cases: list[CaseOutcome], places: tuple[str, ...]) -> dict[str, CaseOutcome]:
+    """By criterion the case with its smallest margin; without any, under an empty name, the one with the lowest U in
+    service; nothing where one case stands alone.
 
     A place along the unit is no case of its own.
     """
     cases = [case for case in cases if case.name not in places]
     if len(cases) == 1:
-        return None
-    if all(case.criteria for case in cases):
-        return min(cases, key=lambda case: _least_margin(case.criteria[0]))
-    return min(cases, key=lambda case: case.results["U_service"].value)
+        return {}
+    margins: dict[str, list[tuple[float, CaseOutcome]]] = {}
+    for case in cases:
+        for item in case.criteria:
+            margins.setdefault(item.id, []).append((_least_margin(item), case))
+    if not margins:
+        return {"": min(cases, key=lambda case: case.results["U_service"].value)}
+    return {name: min(known, key=lambda pair: pair[0])[1] for name, known in margins.items()}

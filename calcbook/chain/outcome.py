@@ -215,7 +215,7 @@ class Solved:
     cross: Mapping[str, tuple[CrossRow, ...]]
     sensitivity: tuple[SensitivityRow, ...]
     cards: Mapping[str, str]
-    governing: str
+    governing: Mapping[str, str]
     rating: Rating | None = None
     uncertainty: Uncertainty | None = None
     over_time: OverTime | None = None

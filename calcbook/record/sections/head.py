@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from calcbook.chain.analysis import is_found_later
 from calcbook.chain.outcome import CaseOutcome
 from calcbook.chain.pressure import acting_methods, drops
 from calcbook.chain.solve import Solution
@@ -217,13 +216,19 @@ def _governing(page: Page) -> list[Block]:
     governing = page.solved.governing
     if not governing:
         return []
-    case = next(case for case in page.solved.cases if case_name(case.name) == governing)
-    judged = [item for item in page.calculation.acceptance if not is_found_later(item.result)]
-    criterion = judged[0] if judged else None
-    rule = f"smallest margin of {criterion.text}" if criterion is not None else "lowest U in service"
+    named = [_governs(case, page) for case in page.solved.cases if case.name in governing.values()]
+    words = "Governing case" if len(named) == 1 else "Governing cases"
+    return [Paragraph(f"{words}: {'; '.join(named)}.")]
+
+
+def _governs(case: CaseOutcome, page: Page) -> str:
+    """A case, the criteria that it has the smallest margin of, and its U."""
+    criteria = [name for name, governing in page.solved.governing.items() if governing == case.name]
+    margins = " and of ".join(page.calculation.criterion(name).text for name in criteria if name)
+    rule = f"smallest margin of {margins}" if margins else "lowest U in service"
     result = case.results["U_service"]
     value = in_report_unit(result.value, result.kind, page.calculation.report, CONCLUSION_DIGITS)
-    return [Paragraph(f"Governing case: {governing} ({rule}), U in service {value}.")]
+    return f"{case_name(case.name)} ({rule}), U in service {value}"
 
 
 def open_items(page: Page) -> list[Block]:

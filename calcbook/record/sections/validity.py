@@ -157,7 +157,7 @@ def cross_check(page: Page) -> list[Block]:
         )
     for case, rows in crossed.items():
         if len(crossed) > 1 and rows:
-            governs = ", which governs" if case_name(case) == page.solved.governing else ""
+            governs = ", which governs" if case in page.solved.governing.values() else ""
             blocks.append(Heading(4, f"Case {case_name(case)}{governs}"))
         blocks += _crossed(case, rows, page)
     return [*blocks, *_closure(page)]
