@@ -25,6 +25,21 @@ class LedgerRow(NamedTuple):
     is_margin: bool
 
 
+class Ledger(NamedTuple):
+    """The margin ledger of one case."""
+
+    rows: tuple[LedgerRow, ...]
+
+    @property
+    def sum(self) -> float:
+        """The area of all tubes, m²."""
+        return sum(row.area for row in self.rows)
+
+    def area(self, name: str) -> float:
+        """The area of an entry; nothing where the case has none of its name."""
+        return sum(row.area for row in self.rows if row.name == name)
+
+
 class PartRow(NamedTuple):
     """One of several equal parts of the duty along the unit, with its own U in service and clean."""
 
@@ -137,16 +152,20 @@ class DayOne(NamedTuple):
 
 
 class Rating(NamedTuple):
-    """Everything that the rating adds to a solved calculation: ledger and parts of the base case, and day one by case.
+    """Everything that the rating adds to a solved calculation: ledger and day one by case, parts of the base case.
 
-    ``days`` holds for every case, the base case as an empty name, the clean unit or in words why it has no answer;
-    nothing where none is asked for.
+    ``ledgers`` and ``days`` name the base case by an empty name. ``days`` holds the clean unit, or in words why it has
+    no answer; nothing where none is asked for.
     """
 
-    ledger: tuple[LedgerRow, ...]
-    ledger_sum: float
+    ledgers: Mapping[str, Ledger]
     parts: Parts | None
     days: Mapping[str, DayOne | str]
+
+    @property
+    def ledger(self) -> Ledger:
+        """The ledger of the base case."""
+        return self.ledgers[""]
 
     @property
     def answered(self) -> dict[str, DayOne]:

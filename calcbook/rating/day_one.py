@@ -11,23 +11,23 @@ import numpy as np
 
 from calcbook.chain.completing import completed
 from calcbook.chain.findings import lacking_property, phases_not_checked
-from calcbook.chain.outcome import CaseOutcome, Solved
+from calcbook.chain.outcome import CaseOutcome
 from calcbook.chain.rating_outcome import WITH_ALLOWANCES, DayOne
 from calcbook.chain.solve import solve
-from calcbook.chain.types import CLEAN, SERVICE
+from calcbook.chain.types import CLEAN, SERVICE, Chain
 from calcbook.rating.opened import open_chain
 from calcbook.rating.turning_down import turned_down
 from calcbook.rating.unit_states import judged, limits_of_duty, unit_state
 
 
-def day_one(solved: Solved, case: CaseOutcome) -> DayOne | str | None:
+def day_one(before: Chain, case: CaseOutcome) -> DayOne | str | None:
     """The clean unit at the duty's inlets in a case, or in words why it has no answer there.
 
     None where a flow is missing that it takes, or nothing fouls.
     """
     if not any(row.kind == "fouling" for row in case.terms[SERVICE]):
         return None
-    chain = open_chain(solved.chain, case, "hot", "cold")
+    chain = open_chain(before, case, "hot", "cold")
     if chain is None:
         return None
     inputs = chain.case_inputs(case.name)
@@ -45,7 +45,7 @@ def day_one(solved: Solved, case: CaseOutcome) -> DayOne | str | None:
             )
     where = f", case {case.name}" if case.name else ""
     clean, in_service = solutions[CLEAN], solutions[SERVICE]
-    turned = turned_down(solved.chain, case)
+    turned = turned_down(before, case)
     with_allowances = tuple(
         check._replace(condition=f"{WITH_ALLOWANCES}{where}") for check in limits_of_duty(chain, in_service)
     )

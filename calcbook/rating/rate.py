@@ -2,11 +2,12 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import replace
 
-from calcbook.chain.outcome import Solved
+from calcbook.chain.outcome import CaseOutcome, Solved
 from calcbook.chain.rating_outcome import DayOne, Rating
-from calcbook.chain.types import OpenItem
+from calcbook.chain.types import Chain, OpenItem
 from calcbook.rating.day_one import day_one
 from calcbook.rating.ledger import ledger
 from calcbook.rating.parts import parts, with_parts
@@ -16,23 +17,20 @@ def rated(solved: Solved) -> Solved:
     """A solved calculation with its rating; unchanged where no duty is stated or the duty is what is reached."""
     if "duty" not in solved.chain.results:
         return solved
-    rows = ledger(solved)
     along = parts(solved)
-    rating = Rating(rows, sum(row.area for row in rows), along, _days(solved))
-    cases = [
+    cases = [case for case in solved.cases if case.name not in solved.chain.calculation.places]
+    rating = Rating(
+        {case.name: ledger(solved.chain, case) for case in cases}, along, _days(solved.chain, cases)
+    )
+    told = [
         replace(case, open_items=(*case.open_items, *_open_items(rating, case.name))) for case in solved.cases
     ]
-    solved = replace(solved, rating=rating, cases=tuple(cases))
+    solved = replace(solved, rating=rating, cases=tuple(told))
     return with_parts(solved, along) if along is not None else solved
 
 
-def _days(solved: Solved) -> dict[str, DayOne | str]:
-    """Day one of every case that is no place along the unit."""
-    found = {
-        case.name: day_one(solved, case)
-        for case in solved.cases
-        if case.name not in solved.chain.calculation.places
-    }
+def _days(chain: Chain, cases: Sequence[CaseOutcome]) -> dict[str, DayOne | str]:
+    found = {case.name: day_one(chain, case) for case in cases}
     return {name: day for name, day in found.items() if day is not None}
 
 

@@ -15,8 +15,10 @@ Figures = Iterator[tuple[str, float, QuantityKind]]
 def rating_figures(rating: Rating) -> Figures:
     """Name, value in SI and kind of every figure of the ledger, the parts and day one, in order."""
     kinds = vocabulary()
-    for row in rating.ledger:
-        yield f"ledger / {row.name}", row.area, kinds["area"]
+    for case, ledger in rating.ledgers.items():
+        where = f" in case {case}" if case else ""
+        for row in ledger.rows:
+            yield f"ledger{where} / {row.name}", row.area, kinds["area"]
     if rating.parts is not None:
         yield from _parts(rating.parts)
     for case, day in rating.told.items():

@@ -245,8 +245,8 @@ def test_the_ledger_adds_up_and_names_the_allowance(tmp_path: Path) -> None:
     answer = solved(tmp_path, fouling="0.0003 m^2 K/W", length="900 m")
     rating = answer.rating
     assert rating is not None
-    assert rating.ledger_sum == pytest.approx(figure(answer, "area_installed"), rel=1e-12)
-    parts = {row.name: row.area for row in rating.ledger}
+    assert rating.ledger.sum == pytest.approx(figure(answer, "area_installed"), rel=1e-12)
+    parts = {row.name: row.area for row in rating.ledger.rows}
     assert parts["duty at clean U"] == pytest.approx(figure(answer, "area_clean"), rel=1e-12)
     # Q·R_f/ΔT_lm, by hand
     assert parts["deposit"] == pytest.approx(
@@ -292,7 +292,7 @@ def test_a_stated_area_is_what_carries_the_duty(tmp_path: Path) -> None:
     states = {check.id: check.state for check in answer.base.checks}
     assert states["duty / area / stated"] == states["duty / area / closely stated"] == "outside"
     assert "duty / area / stated / service" in {item.id for item in answer.open_items}
-    assert answer.rating.ledger_sum == pytest.approx(stated, rel=1e-12)
+    assert answer.rating.ledger.sum == pytest.approx(stated, rel=1e-12)
 
 
 def test_a_unit_that_is_too_small_has_an_allowance_below_zero(tmp_path: Path) -> None:
@@ -517,10 +517,10 @@ def test_a_method_factor_has_its_own_line_in_the_ledger() -> None:
     answer = solve_file(RATED)
     clean = answer.base.solutions["clean"]
     film = clean.number(answer.chain.results["R tube-side film"])
-    lines = {row.name: row.area for row in answer.rating.ledger}
+    lines = {row.name: row.area for row in answer.rating.ledger.rows}
     expected = figure(answer, "duty") / figure(answer, "LMTD") * film * 0.1
     assert lines["method factor of tube-side film"] == pytest.approx(expected, rel=1e-9)
-    assert answer.rating.ledger_sum == pytest.approx(figure(answer, "area_installed"), rel=1e-12)
+    assert answer.rating.ledger.sum == pytest.approx(figure(answer, "area_installed"), rel=1e-12)
     # The methods of the cross-check stand without the factor: the same law in another's place differs by it.
     assert clean.number("tube-side film/gnielinski-1976/h with factor") == pytest.approx(
         0.9 * clean.number("tube-side film/gnielinski-1976/h"), rel=1e-14

@@ -83,9 +83,3 @@ def test_a_case_without_a_day_one_is_an_open_item_of_its_own(tmp_path: Path) -> 
     assert "day one in case cold spell" in ids and "day one" not in ids
     page = record_text(solved)
     assert "Day one has no answer in case cold spell: the circuit of the clean unit does not close" in page
-
-
-def test_the_ledger_says_that_it_is_of_the_base_case(tmp_path: Path) -> None:
-    words = "It is of the base case; no other case is worked out here."
-    assert record_text(solve_file(CALCS / "hr-821.yaml")).count(words) == 1
-    assert words not in record_text(solve_file(CALCS / "wc-105.yaml"))

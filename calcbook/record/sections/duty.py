@@ -29,7 +29,7 @@ from calcbook.record.numbers import (
     report_unit,
     unit_text,
 )
-from calcbook.record.page import Page, counted
+from calcbook.record.page import Page, case_name, counted
 from calcbook.record.sections.criteria import CRITERION_COLUMNS, criterion_row
 from calcbook.record.sections.validity import verdict
 
@@ -130,16 +130,15 @@ def area_blocks(page: Page) -> list[Block]:
 def _ledger(page: Page, rating: Rating) -> list[Block]:
     unit = report_unit(vocabulary()["area"], page.calculation.report)
     rows = [
-        (row.name, _area(page, row.area), percent(row.area / rating.ledger_sum), row.basis)
-        for row in rating.ledger
+        (row.name, _area(page, row.area), percent(row.area / rating.ledger.sum), row.basis)
+        for row in rating.ledger.rows
     ]
     whole = "installed area, as stated" if _is_stated(page) else "area of all tubes, or of the wall"
-    rows.append(("sum", _area(page, rating.ledger_sum), "100.0 %", whole))
-    stacked = [row for row in rating.ledger if row.is_margin and row.area > 0.0]
+    rows.append(("sum", _area(page, rating.ledger.sum), "100.0 %", whole))
+    stacked = [row for row in rating.ledger.rows if row.is_margin and row.area > 0.0]
     words = (
         "The area of a resistance is Q/ΔT_mean times that resistance on the basis area, so that the entries add"
         " up. Each margin stands on its own line; they are stacked, and none of them is a reserve for another."
-        f"{_base_alone(page)}"
     )
     blocks: list[Block] = [
         Heading(3, "Margin ledger"),
@@ -148,8 +147,8 @@ def _ledger(page: Page, rating: Rating) -> list[Block]:
     ]
     if stacked:
         total = sum(row.area for row in stacked)
-        needed = rating.ledger[0].area
-        less = [row for row in rating.ledger if row.is_margin and row.area < 0.0]
+        needed = rating.ledger.rows[0].area
+        less = [row for row in rating.ledger.rows if row.is_margin and row.area < 0.0]
         taken = "".join(f", less {percent(-row.area / needed)} for {row.name}" for row in less)
         blocks.append(
             Paragraph(
@@ -157,7 +156,21 @@ def _ledger(page: Page, rating: Rating) -> list[Block]:
                 f" area that the duty needs clean{taken}."
             )
         )
-    return blocks
+    return [*blocks, *_ledgers(page, rating)]
+
+
+def _ledgers(page: Page, rating: Rating) -> list[Block]:
+    """The same entries in every case beside each other, where there are more than one."""
+    if len(rating.ledgers) == 1:
+        return []
+    unit = unit_text(report_unit(vocabulary()["area"], page.calculation.report))
+    names = dict.fromkeys(row.name for ledger in rating.ledgers.values() for row in ledger.rows)
+    rows = [(name, *(_area(page, ledger.area(name)) for ledger in rating.ledgers.values())) for name in names]
+    rows.append(("sum", *(_area(page, ledger.sum) for ledger in rating.ledgers.values())))
+    return [
+        Paragraph(f"The same in every case, in {unit}:"),
+        Table(("Part of the area", *map(case_name, rating.ledgers)), tuple(rows)),
+    ]
 
 
 def _area(page: Page, value: float) -> str:
@@ -293,11 +306,6 @@ def two_ways(page: Page) -> list[Block]:
 
 
 # --- section 12 -------------------------------------------------------------------------------------
-
-
-def _base_alone(page: Page) -> str:
-    """That a section is of the base case, where there are others."""
-    return " It is of the base case; no other case is worked out here." if page.calculation.cases else ""
 
 
 def day_one_blocks(page: Page) -> list[Block]:
