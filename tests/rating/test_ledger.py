@@ -36,6 +36,7 @@ def test_every_case_has_its_ledger_and_each_adds_up_to_all_tubes(tmp_path: Path)
     for row in alone.ledger.rows:
         assert ledgers["winter"].area(row.name) == pytest.approx(row.area, rel=1e-8)
     page = record_text(answer)
+    assert "| Largest in case ten plugged, m²·K/W | Largest in case winter, m²·K/W |" in page
     assert "| Part of the area | base | ten plugged | winter |" in page
     (line,) = (line for line in page.splitlines() if line.startswith("| plugged tubes |"))
     assert line == f"| plugged tubes | 0 | {every * 10 / 116:.4f} | 0 |"

@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 
 from calcbook.chain.allowance import fouling_figures
+from calcbook.chain.outcome import CaseOutcome
 from calcbook.chain.plausible import THROTTLED_STEAM
 from calcbook.chain.rating_outcome import (
     FLOW,
@@ -199,24 +200,42 @@ def _allowances(page: Page) -> list[Block]:
             "The largest resistance of one fouling figure, on its own surface, with which the installed area still"
             " carries the duty; the others stay as stated. The circuit is closed again with it: films and walls follow"
             " their temperatures, so it is not just what 1/U_req leaves beside the resistances above."
+            + (" What is stated is that of the base case." if _named_cases(page) else "")
             + (" The bore stays as the stated deposits narrow it." if narrows else "")
         ),
-        Table(("Fouling term", "On", f"Stated, {unit}", f"Largest, {unit}"), rows),
+        Table(
+            (
+                "Fouling term",
+                "On",
+                f"Stated, {unit}",
+                f"Largest, {unit}",
+                *(f"Largest in case {case.name}, {unit}" for case in _named_cases(page)),
+            ),
+            rows,
+        ),
     ]
+
+
+def _named_cases(page: Page) -> list[CaseOutcome]:
+    """The cases beside the base case that are no places along the unit."""
+    return [case for case in page.solved.cases[1:] if case.name not in page.calculation.places]
 
 
 def _allowance_row(page: Page, figure: str, layers: tuple[Layer, ...]) -> tuple[str, ...]:
     name = ", ".join(layer.name for layer in layers)
     surfaces = dict.fromkeys(page.chain.surfaces[layer.surface].name for layer in layers)
     stated = page.base.solutions["service"].number(figure)
-    largest = page.result(f"largest_allowance {name}")
+    largest = [case.results.get(f"largest_allowance {name}") for case in (page.base, *_named_cases(page))]
     return (
         name,
         ", ".join(surfaces),
         _plain(page, stated, "area resistance", PLAIN_DIGITS),
-        _plain(page, largest.value, "area resistance", PLAIN_DIGITS)
-        if largest is not None and largest.value >= 0.0
-        else "none: the duty is not carried even without it",
+        *(
+            _plain(page, one.value, "area resistance", PLAIN_DIGITS)
+            if one is not None and one.value >= 0.0
+            else "none: the duty is not carried even without it"
+            for one in largest
+        ),
     )
 
 
@@ -248,7 +267,8 @@ def _parts(page: Page, parts: Parts) -> list[Block]:
     return [
         Heading(3, "Parts of the unit"),
         Paragraph(
-            f"Equal parts of the duty, numbered from the hot inlet, each with the properties at its own means. U in"
+            f"Equal parts of the duty{' of the base case' if _named_cases(page) else ''}, numbered from the hot inlet, each"
+            " with the properties at its own means. U in"
             f" service differs by {percent(parts.spread)} over them; the summed area in service is"
             f" {percent(parts.area['service'] / single - 1.0, 2)} off that from one mean state."
         ),
