@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import re
 from functools import cache
 from pathlib import Path
@@ -77,6 +78,24 @@ def test_a_probability_that_cannot_be_is_a_fault(tmp_path: Path, criterion: str,
     with pytest.raises(Faults) as caught:
         solve_file(with_criterion(tmp_path, criterion), for_record=False)
     assert [fault.code for fault in caught.value.faults] == [code]
+
+
+def test_a_share_next_to_what_is_asked_says_so(tmp_path: Path) -> None:
+    """A share of N samples has the standard deviation sqrt(p(1 − p)/N) (binomial law)."""
+    near, far = ("probability: 86 %", "probability: 87 %")
+    rows = []
+    for asked in (near, far):
+        path = with_criterion(tmp_path, f"that: area_margin >= 0, source: test, {asked}")
+        solved = solve_file(path)
+        rows.append(
+            next(line for line in record_text(solved).splitlines() if line.startswith("| criterion 1"))
+        )
+    sampling = solved.uncertainty.sampling
+    (share,) = (one.probability for one in sampling.chances if one.id == "criterion 1")
+    deviation = 100.0 * math.sqrt(share * (1.0 - share) / sampling.trials)
+    assert abs(100.0 * share - 86.0) < 2.0 * deviation < 1.0
+    assert f"a standard deviation of {deviation:#.2g} %, so that other samples may decide otherwise" in rows[0]
+    assert "may decide otherwise" not in rows[1]
 
 
 def test_a_probability_wants_samples(tmp_path: Path) -> None:

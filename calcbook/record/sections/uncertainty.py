@@ -18,6 +18,8 @@ FACTOR_PLACES = 3
 # Above this share, samples without an answer or outside a limit are a caution.
 MOST_UNSAID = 0.001
 AT_STATED = " at the stated values"
+# So many standard deviations of a share tell it from another at about 95 %.
+NEAR = 2.0
 # What a figure on a scale with a zero of its own is given as a part of its value.
 NO_PART = "none of a temperature"
 NOT_SEPARABLE = "not separable"
@@ -74,7 +76,7 @@ def certainty_words(found: Uncertainty | None, item: CriterionResult) -> str:
         as_stated = "met" if item.is_met_as_stated else "not met"
         return (
             f": it holds with {held}{lacking}, and {asked_text(item.required)} is asked for;"
-            f" {as_stated}{AT_STATED}"
+            f" {as_stated}{AT_STATED}{_near(known_chance.chance)}"
         )
     if not math.isnan(item.required):
         return f"{AT_STATED}; the probability that is asked for is not worked out"
@@ -85,6 +87,16 @@ def certainty_words(found: Uncertainty | None, item: CriterionResult) -> str:
     if abs(item.margin) < expanded:
         return f"{AT_STATED}; the limit lies within the expanded uncertainty"
     return _lacking(missing, f"{AT_STATED}; its uncertainty lacks")
+
+
+def _near(chance: Chance) -> str:
+    """That a share cannot be told from what is asked for by so many samples."""
+    if abs(chance.probability - chance.required) > NEAR * chance.deviation:
+        return ""
+    return (
+        f"; the share is known within a standard deviation of {number(100.0 * chance.deviation, 2)} %, so that other"
+        " samples may decide otherwise"
+    )
 
 
 def result_of(item: CriterionResult) -> str:
