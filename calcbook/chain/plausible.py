@@ -17,6 +17,7 @@ from calcbook.chain.checks import apart
 from calcbook.chain.circuit import branch_coefficient
 from calcbook.chain.gaps import gaps
 from calcbook.chain.outcome import CheckResult
+from calcbook.chain.scope import STANDARD_PRESSURE
 from calcbook.chain.solve import Solution
 from calcbook.chain.types import SERVICE, Branch, Chain, Group, Layer, StreamState
 from calcbook.library.plausibility import FOULING, OVERALL, Band, Typical, bands, typical
@@ -46,7 +47,7 @@ FILMS = {
     "": "stated film coefficient",
 }
 
-THROTTLED_STEAM = "pressure of throttled steam"
+THROTTLED_VAPOUR = "pressure of a throttled vapour"
 
 
 @dataclass(frozen=True, slots=True)
@@ -69,17 +70,21 @@ def band_checks(chain: Chain, case: str, solution: Solution) -> list[CheckResult
     return [check for check in found if check is not None]
 
 
-def throttled_steam(stream: StreamState, stated: Solution, throttled: Solution) -> list[CheckResult]:
-    """A caution where condensing steam above the atmosphere is throttled to a pressure below it."""
-    fluid = stream.fluid.fixed
-    if fluid is None or fluid.name != "Water" or stream.phase != "gas" or not stream.pressure:
+def throttled_vapour(
+    chain: Chain, stream: StreamState, stated: float, throttled: float, condition: str
+) -> list[CheckResult]:
+    """A caution where a condensing vapour is throttled from above the pressure of the site to below it (pressures in Pa)."""
+    band = bands()[THROTTLED_VAPOUR]._replace(low=site_pressure(chain))
+    if not stated >= band.low:
         return []
-    band = bands()[THROTTLED_STEAM]
-    owner, here = f"stream {stream.name}", throttled.number(stream.pressure)
-    if stated.number(stream.pressure) < band.low:
-        return []
-    check = _outside(Figure(owner, band.name, here), band, "", throttled.condition)
+    check = _outside(Figure(f"stream {stream.name}", band.name, throttled), band, "", condition)
     return [check] if check is not None else []
+
+
+def site_pressure(chain: Chain) -> float:
+    """The pressure of the site that the book states, else the standard atmosphere, Pa."""
+    stated = chain.calculation.settings.site_pressure
+    return stated.quantity.value if stated is not None and stated.quantity is not None else STANDARD_PRESSURE
 
 
 def figures(chain: Chain, solution: Solution) -> Iterator[Figure]:
@@ -277,6 +282,10 @@ def _kind(chain: Chain, solution: Solution, branch: Branch) -> str:
         return branch.situation.changes_phase
     if not branch.stream:
         return ""
+    duty = chain.calculation.duty
+    for name, side in duty.sides.items() if duty is not None else ():
+        if side.stream == branch.stream and not side.has_ends:
+            return "condensing" if name == "hot" else "boiling"
     state = chain.streams[branch.stream]
     if state.phase:
         return state.phase

@@ -62,7 +62,7 @@ class Parts(NamedTuple):
 class SideState(NamedTuple):
     """One side of the unit in one state: flow, outlet, speed (NaN where not known), wetted surface.
 
-    ``pressure`` is that of a stream that changes phase, NaN for others and where it is not known.
+    ``pressure`` is that of a stream that changes phase and ``changing`` the flow that does so, NaN for others.
     """
 
     mass_flow: float
@@ -70,6 +70,7 @@ class SideState(NamedTuple):
     speed: float
     surface: float
     pressure: float
+    changing: float
 
 
 class UnitState(NamedTuple):
@@ -102,7 +103,7 @@ class DayOne(NamedTuple):
     """The clean unit at the inlets of the duty: as it runs, and turned down until it gives the duty.
 
     ``service`` is the unit with its allowances. ``turned_down`` is None with the reason in ``no_turn_down``.
-    ``throttle`` is what the control moves for it.
+    ``throttle`` is what the control moves for it, ``is_slow`` whether that runs below its usual speed then.
     ``checks`` are phases at the wall and figures outside their bands, in the state that ``condition`` names;
     ``criteria`` are those of the file on temperatures of the clean unit, in the state that their case names;
     ``not_checked`` are the streams of which boiling or freezing at the wall cannot be checked.
@@ -113,6 +114,7 @@ class DayOne(NamedTuple):
     turned_down: UnitState | None
     no_turn_down: str
     throttle: Throttle
+    is_slow: bool
     checks: tuple[CheckResult, ...]
     criteria: tuple[CriterionResult, ...]
     not_checked: Mapping[str, tuple[str, ...]]
@@ -121,6 +123,11 @@ class DayOne(NamedTuple):
     def hotter(self) -> float:
         """How much hotter the surface on the cold side is clean than in service, K."""
         return self.clean.sides["cold"].surface - self.service.sides["cold"].surface
+
+    @property
+    def colder(self) -> float:
+        """How much colder the surface on the hot side is clean than in service, K."""
+        return self.service.sides["hot"].surface - self.clean.sides["hot"].surface
 
     @property
     def flow_part(self) -> float:
@@ -136,11 +143,6 @@ class DayOne(NamedTuple):
         if self.turned_down is None:
             return float("nan")
         return self.turned_down.sides["cold"].surface - self.service.sides["cold"].surface
-
-    @property
-    def is_slow(self) -> bool:
-        """Whether a speed of the unit turned down lies outside its usual window."""
-        return any(check.condition.startswith(TURNED_DOWN) and check.unit == "m/s" for check in self.checks)
 
     def is_like(self, other: DayOne) -> bool:
         """Whether the clean unit does the same as in another case, and leaves the same."""

@@ -5,8 +5,6 @@ The outlets are then open, so the calculation is built anew without them and wit
 
 from __future__ import annotations
 
-from dataclasses import replace
-
 import numpy as np
 
 from calcbook.chain.completing import completed
@@ -16,7 +14,7 @@ from calcbook.chain.rating_outcome import WITH_ALLOWANCES, DayOne
 from calcbook.chain.solve import solve
 from calcbook.chain.types import CLEAN, SERVICE, Chain
 from calcbook.rating.opened import open_chain
-from calcbook.rating.turning_down import turned_down
+from calcbook.rating.turning_down import TurnedDown, turned_down
 from calcbook.rating.unit_states import judged, limits_of_duty, unit_state
 
 
@@ -31,9 +29,8 @@ def day_one(before: Chain, case: CaseOutcome) -> DayOne | str | None:
     if chain is None:
         return None
     inputs = chain.case_inputs(case.name)
-    clean_chain = replace(
-        chain, open_figures=tuple(replace(item, condition=CLEAN) for item in chain.open_figures)
-    )
+    clean_chain = open_chain(before, case, "hot", "cold", condition=CLEAN)
+    assert clean_chain is not None, "the same calculation found its figures in service"
     states = {SERVICE: (chain, SERVICE), CLEAN: (clean_chain, CLEAN)}
     solutions = {name: solve(one, inputs, condition) for name, (one, condition) in states.items()}
     for name, solution in solutions.items():
@@ -58,7 +55,19 @@ def day_one(before: Chain, case: CaseOutcome) -> DayOne | str | None:
         turned.state,
         turned.reason,
         turned.throttle,
+        _is_slower(before, case, turned),
         with_allowances + as_it_runs.checks + turned.left.checks,
         as_it_runs.criteria + turned.left.criteria,
         phases_not_checked(clean_chain, clean),
     )
+
+
+def _is_slower(chain: Chain, case: CaseOutcome, turned: TurnedDown) -> bool:
+    """Whether the throttled stream runs below its usual speed, and does not in service."""
+    duty = chain.calculation.duty
+    assert duty is not None
+    stream = duty.sides[turned.throttle.side].stream
+    films = {branch.name for branch in chain.branches if branch.stream == stream}
+    slow = {check.id for check in turned.left.checks if check.unit == "m/s" and check.side == "below"}
+    slow -= {check.id for check in case.checks if check.condition == SERVICE and check.state == "outside"}
+    return any(name.startswith(f"{film} / band / ") for name in slow for film in films)

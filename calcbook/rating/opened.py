@@ -13,20 +13,28 @@ from calcbook.faults import Collector
 from calcbook.quantities import read_any
 
 
-def open_chain(chain: Chain, case: CaseOutcome, *sides: str) -> Chain | None:
+def open_chain(chain: Chain, case: CaseOutcome, *sides: str, condition: str = SERVICE) -> Chain | None:
     """The calculation in one part, with the outlets of some sides open and the means of their ends; None where it has a
     fault.
 
-    An inlet that the file leaves open stays where it was found in the case.
+    What is open is found in the ``condition``. An inlet that the file leaves open stays where it was found in the case.
     """
     duty = chain.calculation.duty
     assert duty is not None
     with_inlets = {name: _with_inlet(chain, case, name, side) for name, side in duty.sides.items()}
-    key = (open_chain, sides, "" if with_inlets == duty.sides else case.name)
+    key = (open_chain, sides, condition, "" if with_inlets == duty.sides else case.name)
     if key not in chain.memory:
-        chain.memory[key] = _opened(chain, with_inlets, sides)
+        opened = _opened(chain, with_inlets, sides)
+        chain.memory[key] = opened if opened is None else _found_in(opened, condition)
     found: Chain | None = chain.memory[key]
     return found
+
+
+def _found_in(chain: Chain, condition: str) -> Chain:
+    """A chain that finds its open figures in a condition."""
+    return replace(
+        chain, open_figures=tuple(replace(item, condition=condition) for item in chain.open_figures)
+    )
 
 
 def _opened(before: Chain, with_inlets: Mapping[str, DutySide], sides: Sequence[str]) -> Chain | None:

@@ -18,7 +18,7 @@ from calcbook.chain.outcome import CheckResult, CriterionResult
 from calcbook.chain.plausible import band_checks
 from calcbook.chain.rating_outcome import SideState, UnitState
 from calcbook.chain.solve import Solution, chosen
-from calcbook.chain.types import CLEAN, Branch, Chain, Group, Layer
+from calcbook.chain.types import CLEAN, Branch, Chain, Group, Layer, StreamState
 
 Array = np.ndarray
 
@@ -31,6 +31,7 @@ class Judged(NamedTuple):
 
 
 NOTHING = Judged()
+MARGIN = f"{DUTY} / area / margin"
 
 
 def unit_state(chain: Chain, solution: Solution) -> UnitState:
@@ -47,9 +48,20 @@ def unit_state(chain: Chain, solution: Solution) -> UnitState:
             solution.number(chain.results[f"T {name} outlet"]),
             solution.number(speed) if speed in solution.values else math.nan,
             solution.number(group.surface_temperature),
-            solution.number(stream.pressure) if stream.pressure and not side.has_ends else math.nan,
+            math.nan if side.has_ends else saturation_pressure(stream, solution.number(stream.temperature)),
+            math.nan if side.has_ends else solution.number(chain.results["flow needed"]),
         )
     return UnitState(solution.number(heat), solution.number(chain.results["U"]), sides)
+
+
+def saturation_pressure(stream: StreamState, temperature: float) -> float:
+    """The pressure at which a stream that changes phase has a temperature; NaN where that is not known."""
+    fluid = stream.fluid.state(None, None, stream.phase)
+    return (
+        float(fluid.saturation_pressure(temperature, outside="nan"))
+        if fluid.has_vapour_pressure
+        else math.nan
+    )
 
 
 def _film_of(chain: Chain, stream: str) -> tuple[Group, Branch]:

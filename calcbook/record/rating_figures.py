@@ -53,3 +53,4 @@ def _state(name: str, state: UnitState) -> Figures:
         yield f"{name} / speed {side}", there.speed, kinds["speed"]
         if math.isfinite(there.pressure):
             yield f"{name} / pressure {side}", there.pressure, kinds["pressure"]
+            yield f"{name} / flow that changes phase {side}", there.changing, kinds["mass flow"]

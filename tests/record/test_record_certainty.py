@@ -94,7 +94,9 @@ def test_a_share_next_to_what_is_asked_says_so(tmp_path: Path) -> None:
     (share,) = (one.probability for one in sampling.chances if one.id == "criterion 1")
     deviation = 100.0 * math.sqrt(share * (1.0 - share) / sampling.trials)
     assert abs(100.0 * share - 86.0) < 2.0 * deviation < 1.0
-    assert f"a standard deviation of {deviation:#.2g} %, so that other samples may decide otherwise" in rows[0]
+    assert (
+        f"a standard deviation of {deviation:#.2g} %, so that other samples may decide otherwise" in rows[0]
+    )
     assert "may decide otherwise" not in rows[1]
 
 

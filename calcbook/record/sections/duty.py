@@ -6,7 +6,7 @@ import math
 
 from calcbook.chain.allowance import fouling_figures
 from calcbook.chain.outcome import CaseOutcome
-from calcbook.chain.plausible import THROTTLED_STEAM
+from calcbook.chain.plausible import THROTTLED_VAPOUR, site_pressure
 from calcbook.chain.rating_outcome import (
     FLOW,
     PRESSURE,
@@ -101,7 +101,7 @@ def _arrangement(page: Page) -> list[tuple[str, str, str]]:
 def _reached_basis(page: Page) -> str:
     """What the heat that is reached rests on, and whether a saturated stream has that much."""
     day = page.days.get("")
-    words = "effectiveness, from the same inlets"
+    words = "effectiveness, from the same inlets, with U at the stated means"
     left = [check for check in (day.checks if day is not None else ()) if check.condition == WITH_ALLOWANCES]
     return f"{words}; {left[0].id}: {left[0].figure}, limit {left[0].limit}, outside" if left else words
 
@@ -348,12 +348,12 @@ def day_one_blocks(page: Page) -> list[Block]:
 def _day_blocks(page: Page, day: DayOne, case: str) -> list[Block]:
     states = {WITH_ALLOWANCES: day.service, "clean": day.clean}
     if day.turned_down is not None:
-        states[f"clean, turned down to the stated {day.throttle.other} outlet"] = day.turned_down
+        states[f"clean, {_way(day)} until {_until(page, day)}"] = day.turned_down
     what = (
         f"The same states at the inlets of case {case}."
         if case and "" in page.days
-        else "The unit at the inlets of the duty, its outlets found by effectiveness: with its allowances, clean,"
-        f" and clean with {_control(page, day)}"
+        else "The unit at the inlets of the duty, its outlets found by effectiveness: with its allowances and clean, as it"
+        f" runs uncontrolled{_control(page, day)}"
     )
     blocks: list[Block] = [
         Paragraph(what),
@@ -399,14 +399,37 @@ def _control(page: Page, day: DayOne) -> str:
     """What the control moves for the last state, and who says so."""
     throttle = day.throttle
     stream = _stream_of(page, throttle.side)
-    way = "turned down" if throttle.what == FLOW or throttle.side == "hot" else "raised"
     moved = f"{throttle.side} flow" if throttle.what == FLOW else f"{throttle.what} of {stream}"
-    until = f"the {moved} {way} until the {throttle.other} stream leaves as the duty states."
+    last = f", and clean with the {moved} {_way(day)} until {_until(page, day)}" if day.turned_down else ""
     if throttle.is_stated:
-        return f"{until} The file says that the control throttles the {throttle.side} side."
-    doing = "Turning down" if way == "turned down" else "Raising"
-    why = "for its bearing on deposits" if throttle.what == FLOW else "as the file names none"
-    return f"{until} {doing} the {moved} is one way of control, taken here {why}."
+        return f"{last}. The file says that the control throttles the {throttle.side} side."
+    doing = "Turning down" if _way(day) == "turned down" else "Raising"
+    return f"{last}. {doing} the {moved} is one way of control, taken here as the file names none (`throttled:`)."
+
+
+def _way(day: DayOne) -> str:
+    """Which way the control moves what it takes."""
+    return "turned down" if day.throttle.what == FLOW or day.throttle.side == "hot" else "raised"
+
+
+def _until(page: Page, day: DayOne) -> str:
+    """What the control stops at."""
+    duty, other = page.calculation.duty, day.throttle.other
+    assert duty is not None
+    if duty.sides[other].has_ends and duty.sides[other].open_end != "outlet":
+        return f"the {other} stream leaves as the duty states"
+    return "the unit gives the duty"
+
+
+def _has_ends(page: Page, side: str) -> bool:
+    duty = page.calculation.duty
+    assert duty is not None
+    return duty.sides[side].has_ends
+
+
+def _end_of(page: Page, side: str) -> str:
+    """What the temperature of a side at its end is called."""
+    return f"outlet of the {side} stream" if _has_ends(page, side) else f"saturation of the {side} stream"
 
 
 def _stream_of(page: Page, side: str) -> str:
@@ -428,15 +451,58 @@ def _state_rows(page: Page, states: list[UnitState]) -> list[tuple[str, ...]]:
     for name in ("hot", "cold"):
         sides = [state.sides[name] for state in states]
         rows += [
-            row(f"outlet of the {name} stream", "temperature", [side.outlet for side in sides]),
+            row(_end_of(page, name), "temperature", [side.outlet for side in sides]),
             row(f"surface on the {name} side, at the means", "temperature", [side.surface for side in sides]),
-            row(f"flow of the {name} stream", "mass flow", [side.mass_flow for side in sides]),
         ]
+        if any(math.isfinite(side.mass_flow) for side in sides) or _has_ends(page, name):
+            rows.append(row(f"flow of the {name} stream", "mass flow", [side.mass_flow for side in sides]))
+        if any(math.isfinite(side.changing) for side in sides):
+            does = "condenses" if name == "hot" else "evaporates"
+            rows.append(
+                row(f"flow of the {name} stream that {does}", "mass flow", [side.changing for side in sides])
+            )
         if any(math.isfinite(side.speed) for side in sides):
             rows.append(row(f"speed of the {name} stream", "speed", [side.speed for side in sides]))
         if any(math.isfinite(side.pressure) for side in sides):
             rows.append(row(f"pressure of the {name} stream", "pressure", [side.pressure for side in sides]))
     return rows
+
+
+def _with(page: Page, day: DayOne) -> str:
+    """What the unit gives in its turned-down state, at the head of a sentence."""
+    return (
+        f"With the stated {day.throttle.other} outlet"
+        if "leaves" in _until(page, day)
+        else "With the stated duty"
+    )
+
+
+def _of_saturation(page: Page, day: DayOne) -> list[str]:
+    """What a moved saturation means for condensate, vapour and design, of the unit turned down."""
+    throttle, state = day.throttle, day.turned_down
+    if throttle.what == FLOW or state is None:
+        return []
+    stream = _stream_of(page, throttle.side)
+    if throttle.side == "cold":
+        return [
+            f"Stream {stream} stands above its stated state then: design pressure and relief must allow for that."
+        ]
+    over = state.sides["hot"].pressure - site_pressure(page.chain)
+    found = [f"Stream {stream} is taken as saturated; behind a throttling valve it is a little superheated."]
+    if any(check.id.endswith(THROTTLED_VAPOUR) for check in day.checks):
+        return [
+            f"Stream {stream} stands below the pressure of the site then: air leaks in and the condensate does not leave by a"
+            " trap, so that the unit fills with it until enough surface is covered, unless a pump draws it. The clean unit"
+            " knows no allowance: only less installed area raises that pressure.",
+            *found,
+        ]
+    if over > 0.0:
+        pressure = in_report_unit(over, vocabulary()["pressure"], page.calculation.report, CONCLUSION_DIGITS)
+        found.insert(
+            0,
+            f"Stream {stream} stands {pressure} above the pressure of the site then: that drives its condensate out.",
+        )
+    return found
 
 
 def _throttled(page: Page, day: DayOne, state: UnitState) -> str:
@@ -473,22 +539,22 @@ def _sentences(page: Page, day: DayOne) -> tuple[str, ...]:
             f"The surface on the cold side is {kelvin(day.hotter)} hotter clean than with the allowances: what"
             " deposits faster on a hot surface starts there."
         )
+    if day.colder > HOTTER and _has_ends(page, "hot"):
+        found.append(
+            f"The surface on the hot side is {kelvin(day.colder)} colder clean than with the allowances: what sets, freezes"
+            " or condenses on a cold surface starts there."
+        )
     if day.turned_down is not None:
         throttle, hotter = day.throttle, day.turned_down_hotter
         found.append(
-            f"With the stated {throttle.other} outlet the clean unit runs at {_throttled(page, day, day.turned_down)};"
+            f"{_with(page, day)} the clean unit runs at {_throttled(page, day, day.turned_down)};"
             f" the surface on the cold side then stands {kelvin(abs(hotter))} {'above' if hotter >= 0.0 else 'below'} that"
             " with the allowances."
         )
-        if any(check.id.endswith(THROTTLED_STEAM) for check in day.checks):
-            found.append(
-                "That pressure is below the atmosphere: the condensate does not leave by a trap, and the unit fills with it"
-                " until enough surface is covered, unless a pump draws it or air is let in. The smaller the allowances, the"
-                " higher that pressure."
-            )
+        found += _of_saturation(page, day)
         if throttle.what == FLOW and day.is_slow:
             found.append(
-                "At that flow a speed lies outside its usual window: the allowances, on whichever side, breed"
+                "At that flow its speed lies below its usual window: the allowances, on whichever side, breed"
                 f" fouling on the {throttle.side} side."
             )
         elif throttle.what == FLOW and throttle.side == "cold" and hotter > HOTTER:
