@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Mapping
+from collections.abc import Callable, Iterable, Iterator, Mapping
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -48,6 +48,7 @@ from calcbook.chain.pressure import (
     pressure_drop_checks,
     pressure_items,
 )
+from calcbook.chain.rating_outcome import OF_DAY_ONE
 from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.solve import Solution, chosen, closed, conditions_of, solve_both
 from calcbook.chain.specified import OWNER as SPECIFIED
@@ -80,7 +81,10 @@ LATER = {
     "fitted ": "survey",
     **{f"U_{condition}{MEAN_OF_PLACES}": "evaluate at" for condition in CONDITIONS},
     **dict.fromkeys(OF_PARTS, "parts"),
+    **dict.fromkeys(OF_DAY_ONE, "duty"),
 }
+# What is said of a state of the unit turned down that day one does not have, or not by this name.
+NO_STATE = "day one has no such state"
 # What is said of a surface at an end at which the circuit does not close.
 NOT_CLOSED = "not known: the circuit does not close there"
 # Slopes below this part of U are the rounding of sums that cancel.
@@ -101,22 +105,28 @@ def is_found_later(name: str) -> bool:
     return name.startswith(tuple(LATER))
 
 
+def is_found_once(name: str) -> bool:
+    """Whether a result is found once for the calculation, of its base case."""
+    return is_found_later(name) and name not in OF_DAY_ONE
+
+
 def judged_later(solved: Solved, collector: Collector) -> Solved:
     """A solved calculation with the criteria over what was found from it, each in its place among the others.
 
-    What is found of the base case holds in a case too that restates nothing but times of growing terms.
+    What is found of the base case holds in a case too that restates nothing but times of growing terms; day one is
+    that of each case.
     """
     if not any(is_found_later(item.result) for item in solved.chain.calculation.acceptance):
         return solved
-    later = {name: result for name, result in solved.base.results.items() if is_found_later(name)}
+    later = {name: result for name, result in solved.base.results.items() if is_found_once(name)}
     analysis = _Analysis(solved.chain, collector)
     cases = []
     for case in solved.cases:
-        if keeps_what_is_found_later(solved.chain, case.name):
-            results = {**case.results, **later}
-            criteria = analysis.criteria(case.name, results, case.solutions, found_later=True)
-            case = replace(case, criteria=criteria)
-        cases.append(case)
+        keeps = keeps_what_is_found_later(solved.chain, case.name)
+        results = {**case.results, **(later if keeps else {})}
+        found = analysis.criteria_found_later(case.name, results, case.solutions, keeps)
+        criteria = sorted((*case.criteria, *found), key=lambda item: int(item.id.removeprefix("criterion ")))
+        cases.append(replace(case, criteria=tuple(criteria)))
     collector.take(analysis.judging)
     return replace(solved, cases=tuple(cases))
 
@@ -383,24 +393,46 @@ class _Analysis:
         return tuple(results)
 
     def criteria(
+        self, case: str, results: Mapping[str, Result], solutions: Mapping[str, Solution]
+    ) -> tuple[CriterionResult, ...]:
+        """The criteria of a case in the order of the file, but for those over results that are found later."""
+        wanted = {
+            number: criterion for number, criterion in self._numbered() if not self._is_later(criterion)
+        }
+        return self._judged(wanted, case, results, solutions, self._without_value)
+
+    def criteria_found_later(
+        self, case: str, results: Mapping[str, Result], solutions: Mapping[str, Solution], keeps: bool
+    ) -> tuple[CriterionResult, ...]:
+        """The criteria of a case over results that are found later; where it does not keep what is found of the base
+        case, those over its own."""
+        wanted = {
+            number: criterion
+            for number, criterion in self._numbered()
+            if self._is_later(criterion) and (keeps or not is_found_once(criterion.result))
+        }
+        return self._judged(wanted, case, results, solutions, self._not_there)
+
+    def _numbered(self) -> Iterator[tuple[int, Criterion]]:
+        return enumerate(self.chain.calculation.acceptance, 1)
+
+    def _is_later(self, criterion: Criterion) -> bool:
+        return is_found_later(criterion.result) and self._is_asked(criterion.result)
+
+    def _judged(
         self,
+        wanted: Mapping[int, Criterion],
         case: str,
         results: Mapping[str, Result],
         solutions: Mapping[str, Solution],
-        found_later: bool = False,
+        without: Callable[[int, Criterion, str, Mapping[str, Solution]], CriterionResult | None],
     ) -> tuple[CriterionResult, ...]:
-        """The criteria of a case in the order of the file; those over results that are found later when they are."""
+        """Criteria by number, judged; ``without`` gives those whose result is not there."""
         found = []
-        for number, criterion in enumerate(self.chain.calculation.acceptance, 1):
-            later = is_found_later(criterion.result) and self._is_asked(criterion.result)
-            if later and not found_later:
-                continue
+        for number, criterion in wanted.items():
             result = results.get(criterion.result)
             if result is None:
-                if later:
-                    judged = self._not_lost(number, criterion, case, solutions)
-                else:
-                    judged = self._without_value(number, criterion, case, solutions)
+                judged = without(number, criterion, case, solutions)
                 if judged is not None:
                     found.append(judged)
                 elif not case:
@@ -427,6 +459,7 @@ class _Analysis:
             "survey": calculation.survey is not None,
             "evaluate at": bool(calculation.places),
             "parts": calculation.duty is not None and calculation.duty.parts > 1,
+            "duty": calculation.duty is not None,
         }
         return asked[key]
 
@@ -445,6 +478,18 @@ class _Analysis:
         if limit is None:
             return None
         return _told_in_words(number, criterion, case, kind, float(limit), False, words)
+
+    def _not_there(
+        self, number: int, criterion: Criterion, case: str, solutions: Mapping[str, Solution]
+    ) -> CriterionResult | None:
+        """A criterion over a state of day one that is not there, or over a duty that is not lost."""
+        if is_found_once(criterion.result):
+            return self._not_lost(number, criterion, case, solutions)
+        kind = vocabulary()[OF_DAY_ONE[criterion.result][0]]
+        limit = self.limit_of(criterion, kind, solutions[SERVICE])
+        if limit is None:
+            return None
+        return _told_in_words(number, criterion, case, kind, float(limit), False, NO_STATE)
 
     def _not_lost(
         self, number: int, criterion: Criterion, case: str, solutions: Mapping[str, Solution]

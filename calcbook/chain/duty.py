@@ -161,7 +161,11 @@ class DutyLayout:
             )
             return False
         if self.isothermal:
-            self._fault(side.place, "both streams of the duty keep their temperature", "ends of one of them")
+            self._fault(
+                side.place,
+                "both streams of the duty keep their temperature",
+                "a stream with ends; between two saturated streams no `duty:`, and criteria on U or the heat flow",
+            )
             return False
         self.isothermal = name
         self.results |= {f"T {name} inlet": state.temperature, f"T {name} outlet": state.temperature}

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 from typing import TYPE_CHECKING, NamedTuple
 
@@ -83,6 +84,19 @@ class UnitState(NamedTuple):
 
 # The state of the clean unit under its control, and what that moves on a side.
 TURNED_DOWN = "turned down"
+# Results of it by name, with their quantity and their meaning.
+FLOW_RESULT, PRESSURE_RESULT, TEMPERATURE_RESULT = "flow_turned_down", "pressure_turned_down", "T_turned_down"
+OF_DAY_ONE = {
+    FLOW_RESULT: ("mass flow", "flow of the throttled stream with which the clean unit gives the duty"),
+    PRESSURE_RESULT: (
+        "pressure",
+        "pressure of the throttled stream with which the clean unit gives the duty",
+    ),
+    TEMPERATURE_RESULT: (
+        "temperature",
+        "saturation temperature of the throttled stream with which the clean unit gives the duty",
+    ),
+}
 FLOW, PRESSURE, TEMPERATURE = "flow", "pressure", "saturation temperature"
 
 
@@ -138,6 +152,17 @@ class DayOne(NamedTuple):
         return self.turned_down.sides[side].mass_flow / self.service.sides[side].mass_flow
 
     @property
+    def moved(self) -> dict[str, float]:
+        """What the control has moved, by the names of its results; nothing without a turned-down state."""
+        if self.turned_down is None:
+            return {}
+        side = self.turned_down.sides[self.throttle.side]
+        if self.throttle.what == FLOW:
+            return {FLOW_RESULT: side.mass_flow}
+        found = {PRESSURE_RESULT: side.pressure, TEMPERATURE_RESULT: side.outlet}
+        return {name: value for name, value in found.items() if math.isfinite(value)}
+
+    @property
     def turned_down_hotter(self) -> float:
         """As ``hotter``, for the unit turned down."""
         if self.turned_down is None:
@@ -156,8 +181,8 @@ class DayOne(NamedTuple):
 class Rating(NamedTuple):
     """Everything that the rating adds to a solved calculation: ledger and day one by case, parts of the base case.
 
-    ``ledgers`` and ``days`` name the base case by an empty name. ``days`` holds the clean unit, or in words why it has
-    no answer; nothing where none is asked for.
+    ``ledgers`` (none where the duty is what the unit reaches) and ``days`` name the base case by an empty name. ``days``
+    holds the clean unit, or in words why it has no answer; nothing where none is asked for.
     """
 
     ledgers: Mapping[str, Ledger]

@@ -5,25 +5,33 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import replace
 
-from calcbook.chain.outcome import CaseOutcome, Solved
-from calcbook.chain.rating_outcome import DayOne, Rating
+from calcbook.chain.outcome import CaseOutcome, Result, Solved
+from calcbook.chain.rating_outcome import OF_DAY_ONE, DayOne, Rating
 from calcbook.chain.types import Chain, OpenItem
+from calcbook.library import vocabulary
 from calcbook.rating.day_one import day_one
 from calcbook.rating.ledger import ledger
 from calcbook.rating.parts import parts, with_parts
 
 
 def rated(solved: Solved) -> Solved:
-    """A solved calculation with its rating; unchanged where no duty is stated or the duty is what is reached."""
-    if "duty" not in solved.chain.results:
+    """A solved calculation with its rating; unchanged without a duty. One that is what the unit reaches has day one
+    alone."""
+    chain = solved.chain
+    if chain.calculation.duty is None:
         return solved
-    along = parts(solved)
-    cases = [case for case in solved.cases if case.name not in solved.chain.calculation.places]
-    rating = Rating(
-        {case.name: ledger(solved.chain, case) for case in cases}, along, _days(solved.chain, cases)
-    )
+    is_stated = "duty" in chain.results
+    along = parts(solved) if is_stated else None
+    cases = [case for case in solved.cases if case.name not in chain.calculation.places]
+    ledgers = {case.name: ledger(chain, case) for case in cases} if is_stated else {}
+    rating = Rating(ledgers, along, _days(chain, cases))
     told = [
-        replace(case, open_items=(*case.open_items, *_open_items(rating, case.name))) for case in solved.cases
+        replace(
+            case,
+            open_items=(*case.open_items, *_open_items(rating, case.name)),
+            results={**case.results, **_results(rating, case.name)},
+        )
+        for case in solved.cases
     ]
     solved = replace(solved, rating=rating, cases=tuple(told))
     return with_parts(solved, along) if along is not None else solved
@@ -40,3 +48,13 @@ def _open_items(rating: Rating, case: str) -> list[OpenItem]:
         return []
     where = f" in case {case}" if case else ""
     return [OpenItem(f"day one{where}", "check", f"Day one has no answer{where}: {reason}.")]
+
+
+def _results(rating: Rating, case: str) -> dict[str, Result]:
+    """What the control of the clean unit has moved in a case, as results that a criterion may name."""
+    day = rating.answered.get(case)
+    found = {}
+    for name, value in (day.moved if day is not None else {}).items():
+        kind, title = OF_DAY_ONE[name]
+        found[name] = Result(name, value, vocabulary()[kind], title)
+    return found

@@ -58,6 +58,8 @@ def turned_down(chain: Chain, case: CaseOutcome) -> TurnedDown:
     assert duty is not None
     side = throttled_side(chain)
     throttle = Throttle(side, _moved(chain, duty.sides[side]), bool(duty.throttled))
+    if "duty" not in chain.results:
+        return TurnedDown(None, "the duty is what the unit reaches, and none is stated", NOTHING, throttle)
     try:
         opened, figures = (_flow if throttle.what == FLOW else _saturation)(chain, case, duty, throttle)
     except _None as reason:

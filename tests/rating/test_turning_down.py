@@ -102,7 +102,12 @@ def test_a_boiling_stream_is_raised(tmp_path: Path) -> None:
 @pytest.mark.parametrize(
     ("text", "reason"),
     [
-        (HEATER.replace(", outlet: T_co", ""), ""),
+        (
+            HEATER.replace(", outlet: T_co", "").replace(
+                "  T_co: {value: 66 degC,   is: water outlet,          source: sheet}\n", ""
+            ),
+            "the duty is what the unit reaches, and none is stated",
+        ),
         (
             HEATER.replace("tubes: {value: 116", "tubes: {value: 30"),
             "does not carry the duty: it is 40.2 % short",
@@ -112,12 +117,12 @@ def test_a_boiling_stream_is_raised(tmp_path: Path) -> None:
 )
 def test_a_unit_that_cannot_be_turned_down_says_why(tmp_path: Path, text: str, reason: str) -> None:
     answer = solved(tmp_path, text)
-    if not reason:
-        # The duty is then what the unit reaches: nothing is turned down to it.
-        assert answer.rating is None
-        return
     day = day_of(answer)
     assert day.turned_down is None and reason in day.no_turn_down
+    page = record_text(answer)
+    assert f"No turned-down state: {day.no_turn_down}." in page and "is one way of control" not in page
+    # Without a stated duty there is no ledger.
+    assert ("### Margin ledger" in page) is ("duty" in answer.base.results)
 
 
 def test_the_key_takes_a_side(tmp_path: Path) -> None:
@@ -279,3 +284,54 @@ def test_a_speed_that_was_low_before_is_not_bred_by_the_control(
     assert day.turned_down is not None and day.is_slow is is_slow
     assert (day.turned_down.sides["cold"].speed < 0.1) is (tubes != "116")
     assert ("its speed lies below its usual window" in record_text(answer)) is is_slow
+
+
+# --- criteria on it -------------------------------------------------------------------------------------
+
+
+def test_a_criterion_on_the_throttled_pressure_is_judged_in_every_case(tmp_path: Path) -> None:
+    text = HEATER + CASES.replace(
+        "  heavy deposit", "  colder: {T_ci: {value: 1 degC, source: s}}\n  heavy deposit"
+    )
+    limit = "pressure_turned_down >= 1 bara"
+    answer = solved(
+        tmp_path,
+        text + f"acceptance:\n  - {{that: {limit}, source: s}}\n  - {{that: area_margin >= 0, source: s}}\n",
+    )
+    assert answer.rating is not None
+    for case in answer.cases:
+        day = answer.rating.answered[case.name]
+        assert day.turned_down is not None
+        first, second = case.criteria
+        assert (first.id, second.id) == ("criterion 1", "criterion 2")
+        pressure = day.turned_down.sides["hot"].pressure
+        assert first.value == pressure and first.met is (pressure >= 1e5)
+        assert first.margin == pytest.approx(pressure - 1e5, abs=1e-6)
+    assert {case.criteria[0].met for case in answer.cases} == {True, False}
+    page = record_text(answer)
+    assert "Not judged in case" not in page
+    assert f"criterion 1 is not met in case base: {limit}." in page
+
+
+@pytest.mark.parametrize(
+    ("text", "result"),
+    [
+        (HEATER.replace("tubes: {value: 116", "tubes: {value: 30"), "pressure_turned_down >= 1 bara"),
+        (HEATER, "flow_turned_down >= 1 kg/s"),
+    ],
+)
+def test_a_criterion_on_a_state_that_is_not_there_is_not_met(tmp_path: Path, text: str, result: str) -> None:
+    answer = solved(tmp_path, text + f"acceptance:\n  - {{that: {result}, source: s}}\n")
+    (criterion,) = answer.base.criteria
+    assert not criterion.met and criterion.words == "day one has no such state"
+    assert "day one has no such state" in record_text(answer)
+
+
+def test_a_criterion_on_day_one_wants_a_duty(tmp_path: Path) -> None:
+    start, end = HEATER.index("duty:"), HEATER.index("report:")
+    text = HEATER[:start] + HEATER[end:] + "acceptance:\n  - {that: flow_turned_down >= 1 kg/s, source: s}\n"
+    text = text.replace("flow: m_w}", "flow: m_w, temperature: {value: 42 degC, source: s}}")
+    with pytest.raises(Faults) as caught:
+        solved(tmp_path, text)
+    (fault,) = caught.value.faults
+    assert fault.message == "`flow_turned_down` is found only where the file has `duty:`"

@@ -69,6 +69,16 @@ def brief_rows(page: Page) -> list[tuple[str, str, str]]:
     margin = page.result("area_margin")
     if margin is not None:
         rows.append(("Margin of area over the duty", percent(margin.value), "A_installed/A_service − 1"))
+    day = page.days.get("")
+    if day is not None and day.turned_down is not None:
+        runs = _throttled(page, day, day.turned_down)
+        rows.append(
+            (
+                "Clean unit under its control",
+                runs,
+                f"day one, section 12: {_way(day)} until {_until(page, day)}",
+            )
+        )
     return rows
 
 
@@ -119,7 +129,7 @@ def _duty_basis(page: Page) -> str:
 def area_blocks(page: Page) -> list[Block]:
     """Margin ledger, largest allowances and parts, where a duty is stated."""
     rating = page.solved.rating
-    if rating is None:
+    if rating is None or not rating.ledgers:
         return []
     return [
         *_ledger(page, rating),
@@ -355,6 +365,8 @@ def _day_blocks(page: Page, day: DayOne, case: str) -> list[Block]:
         else "The unit at the inlets of the duty, its outlets found by effectiveness: with its allowances and clean, as it"
         f" runs uncontrolled{_control(page, day)}"
     )
+    if page.calculation.duty is not None and page.calculation.duty.parts > 1:
+        what += " Every state is one mean state of the whole unit, not of its parts."
     blocks: list[Block] = [
         Paragraph(what),
         Table(("Figure", *states), tuple(_state_rows(page, list(states.values())))),
@@ -403,6 +415,8 @@ def _control(page: Page, day: DayOne) -> str:
     last = f", and clean with the {moved} {_way(day)} until {_until(page, day)}" if day.turned_down else ""
     if throttle.is_stated:
         return f"{last}. The file says that the control throttles the {throttle.side} side."
+    if day.turned_down is None:
+        return "."
     doing = "Turning down" if _way(day) == "turned down" else "Raising"
     return f"{last}. {doing} the {moved} is one way of control, taken here as the file names none (`throttled:`)."
 

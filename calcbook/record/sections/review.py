@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Callable, Sequence
 
-from calcbook.chain.analysis import is_found_later, keeps_what_is_found_later
+from calcbook.chain.analysis import is_found_once, keeps_what_is_found_later
 from calcbook.chain.findings import lacks_freezing_point, lacks_vapour_pressure
 from calcbook.chain.outcome import CriterionResult, CrossRow, Solved
 from calcbook.chain.outside import stands_in_the_open
@@ -89,6 +89,7 @@ def _ranges(page: Page) -> str:
     cautions = [
         check for check in page.every_check() if check.level == "caution" and check.state == "outside"
     ]
+    cautions += [check for day in page.days.values() for check in day.checks if check.level == "caution"]
     names = ", ".join(dict.fromkeys(check.id for check in cautions))
     told = f" Cautions outside: {names}." if cautions else " No caution is outside."
     return (
@@ -208,7 +209,7 @@ def _failed_on_day_one(page: Page) -> list[str]:
 
 def _not_judged(page: Page) -> list[str]:
     """The criteria over what is found once for the calculation, and the cases that they say nothing of."""
-    later = [item.result for item in page.calculation.acceptance if is_found_later(item.result)]
+    later = [item.result for item in page.calculation.acceptance if is_found_once(item.result)]
     cases = [
         case_name(case.name)
         for case in page.solved.cases
