@@ -527,6 +527,19 @@ def test_a_method_factor_has_its_own_line_in_the_ledger() -> None:
     )
 
 
+def test_plugged_tubes_stand_in_the_ledger_beside_the_installed_area(tmp_path: Path) -> None:
+    """By hand: a tube has π·d_o·L outside; 57 of 62 are installed, and the ledger adds up to all of them."""
+    path = tmp_path / "rt-2.yaml"
+    tubes = "tubes: N, passes: {value: 1, source: s}, plugged: {count: 5, source: s}}"
+    path.write_text(RATED.read_text(encoding="utf-8").replace("parallel: N}", tubes), encoding="utf-8")
+    answer = solve_file(path)
+    tube = np.pi * 0.01905 * 4.88
+    lines = {row.name: row.area for row in answer.rating.ledger}
+    assert lines["plugged tubes"] == pytest.approx(5.0 * tube, rel=1e-12)
+    assert figure(answer, "area_installed") == pytest.approx(57.0 * tube, rel=1e-12)
+    assert answer.rating.ledger_sum == pytest.approx(62.0 * tube, rel=1e-12)
+
+
 @pytest.mark.parametrize(
     ("way", "value", "ratio", "inner_share", "outer_share"),
     [
