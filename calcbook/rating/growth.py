@@ -363,7 +363,7 @@ class _Cleaning:
             return None
         model = growing[0].model
         if self.counts_money and model == "fouling-linear":
-            slope = float(self.loss(np.array([found]))[0]) / found
+            slope = float(self._loss_at(np.array([found]))[0]) / found
             return self._by_card(
                 "cleaning-interval-linear",
                 {"a": slope},

@@ -345,8 +345,51 @@ def test_the_closed_form_nears_the_chain_as_the_loss_nears_its_law(tmp_path: Pat
     assert differences[0] < 0.03 and differences[1] < differences[0] / 5
 
 
-def test_loss_against_the_duty_begins_when_it_is_lost(tmp_path: Path) -> None:
-    cleaning = money(500, 28, more=", loss against: duty").removeprefix(TABLE)
+def test_the_closed_form_of_an_even_growth_takes_the_loss_of_the_chain(tmp_path: Path) -> None:
+    """A loss a·t costs least at t² + 2·t·t_c = 2·C/a (Ma and Epstein's class of problem, worked out by hand), with a
+    from the loss by the closed form of the heat at the interval."""
+    found = over(tmp_path, plane(LINEAR, money(1500, 25))).interval
+    assert found is not None and found.closed_form is not None
+    assert found.closed_form.card == "cleaning-interval-linear"
+    lost = 25.0 / 3.6e9 * (heat("linear")(0.0) - heat("linear")(found.interval))
+    slope, pause = lost / found.interval, 2 * DAY
+    by_hand = math.sqrt(pause**2 + 2 * 1500.0 / slope) - pause
+    assert found.closed_form.interval == pytest.approx(by_hand, rel=1e-9)
+
+
+def test_a_growth_that_waits_or_is_not_alone_has_an_interval_and_no_closed_form(tmp_path: Path) -> None:
+    """The cards are of one growth from the cleaning on: quadrature of the heat where it waits for 40 days, and twice
+    the rate where two terms grow alike."""
+    waiting = LINEAR.replace("after:", "t_ind: {value: 40 days, source: s}, after:")
+    found = over(tmp_path, plane(waiting, money(1500, 25))).interval
+    assert found is not None and found.closed_form is None
+    p, clean = 25.0 / 3.6e9, heat("linear")(0.0)
+
+    def loss(t: float) -> float:
+        return p * (clean - heat("linear")(max(t - 40 * DAY, 0.0)))
+
+    def excess(t: float) -> float:
+        return loss(t) * (t + 2 * DAY) - 1500.0 - quad(loss, 40 * DAY, t, epsrel=1e-10)[0]
+
+    expected = brentq(excess, 41 * DAY, 400 * DAY, xtol=1e-6, rtol=1e-14)
+    assert found.interval == pytest.approx(expected, rel=1e-8)  # as for one growth, above
+    joined = f"{LINEAR}}}\n  - {{name: second scale, kind: fouling, growth: {LINEAR}"
+    two = over(tmp_path, plane(joined, money(1500, 25))).interval
+    one = over(tmp_path, plane(LINEAR.replace(repr(RATE), repr(2 * RATE)), money(1500, 25))).interval
+    assert two is not None and one is not None
+    assert two.interval == pytest.approx(one.interval, rel=1e-8)
+    assert one.closed_form is not None and two.closed_form is None
+
+
+@pytest.mark.parametrize(
+    "cleaning",
+    [
+        money(500, 28, more=", loss against: duty").removeprefix(TABLE),
+        "cleaning: {duration: {value: 2 days, source: s}, loss against: duty}\n",
+    ],
+    ids=["money", "heat"],
+)
+def test_loss_against_the_duty_begins_when_it_is_lost(tmp_path: Path, cleaning: str) -> None:
     text = COOLER.replace("until: 24 months", "until: 48 months")
     found = over(tmp_path, text + cleaning)
     assert found.interval is not None and found.interval.interval > found.duty_lost
@@ -371,6 +414,9 @@ def test_the_record_holds_table_lost_duty_and_interval(cooler: Solved) -> None:
     assert table[0].startswith("| Time, months |") and "EUR/day" in table[0]
     assert "The duty is lost after 8.30 months" in part
     assert "cleaning-interval-asymptotic" in part and "9000 EUR" in text
+    # The card of the closed form is among those that the record names, with what the digest takes of it.
+    card = load_method("cleaning-interval-asymptotic")
+    assert cooler.cards[f"method {card.id}"] == card.digest_text
     # The line with values gives the printed loss and mean.
     for line in (line for line in part.splitlines() if re.match(r"\| (loss|mean over)", line)):
         cells = [cell.strip() for cell in line.strip("|").split("|")]
