@@ -112,6 +112,21 @@ def test_a_curved_model_is_told() -> None:
     assert is_nonlinear(found.standard, math.nan)
 
 
+@pytest.mark.parametrize(("wide", "told"), [(1.052, False), (1.053, True), (0.951, False), (0.949, True)])
+def test_a_change_is_held_against_the_larger_of_both_slopes(wide: float, told: bool) -> None:
+    """5 % of the larger one: 1.0526 above 1, and 0.95 below it."""
+    assert is_nonlinear(1.0, wide) is told and is_nonlinear(wide, 1.0) is told
+
+
+def test_degrees_of_freedom_are_those_of_independent_figures_alone() -> None:
+    """JCGM 100:2008, G.4.1: the formula of Welch and Satterthwaite asks for independent figures."""
+    figures = [Plain("a", 3.0, 0.2, 5), Plain("b", 5.0, 0.3, 8)]
+    slopes = {"a": 2.0, "b": -1.0}
+    by_hand = (0.4**2 + 0.3**2) ** 2 / (0.4**4 / 5 + 0.3**4 / 8)
+    assert first_order(figures, slopes).degrees == pytest.approx(by_hand, rel=1e-12)
+    assert math.isinf(first_order(figures, slopes, {frozenset("ab"): 0.4}).degrees)
+
+
 @pytest.mark.parametrize(
     ("degrees", "coverage", "factor"),
     [

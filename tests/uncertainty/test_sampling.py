@@ -17,6 +17,8 @@ from calcbook.uncertainty.distributions import Normal, Rectangular, Student
 from calcbook.uncertainty.sampling import (
     Drawn,
     Sampled,
+    _Propagation,
+    _summary,
     block_size,
     draw,
     is_possible,
@@ -201,6 +203,60 @@ def test_most_trials_are_told() -> None:
     found = propagate(lambda x: Sampled({"y": x["a"]}), figures, 0.95, 2, most_trials=50_000)
     assert found.is_capped and found.trials == 50_000
     assert max(found.intervals["y"].spread) > found.intervals["y"].aim
+
+
+@pytest.mark.parametrize(
+    ("count", "coverage", "low", "high"),
+    [
+        (10, 0.5, 3.0, 8.0),  # q = 5 by rounding, M − q is odd: r = (5 + 1)/2
+        (10, 0.6, 2.0, 8.0),  # q = 6, M − q is even: r = 4/2
+        (100, 0.95, 3.0, 98.0),  # q = 95: r = (5 + 1)/2
+        (1000, 0.95, 25.0, 975.0),  # q = 950: r = 50/2
+    ],
+)
+def test_the_ends_of_an_interval_are_those_of_the_supplement(
+    count: int, coverage: float, low: float, high: float
+) -> None:
+    """JCGM 101:2008, 7.7.2, on the numbers from 1 in any order: from y_(r) to y_(r+q); from memory."""
+    values = np.arange(count, 0.0, -1.0)
+    assert _summary(values, coverage)[2:] == (low, high)
+
+
+def test_what_is_steady_at_once_takes_five_blocks_and_is_as_steady_as_they_say() -> None:
+    """JCGM 101:2008, 7.9.4 g: s_z² = Σ(z_r − z)²/(h·(h − 1)), here by hand for the means of the blocks."""
+    figures = [Drawn("a", Normal(10.0, 1.0))]
+    found = propagate(lambda x: Sampled({"y": x["a"]}), figures, 0.95, 1)
+    means = [draw(figures, {}, number, 10_000)["a"].mean() for number in range(found.blocks)]
+    scatter = sum((one - np.mean(means)) ** 2 for one in means) / (found.blocks * (found.blocks - 1))
+    assert found.intervals["y"].spread[0] == pytest.approx(2.0 * math.sqrt(scatter), rel=1e-12)
+    still = propagate(lambda x: Sampled({"y": 0.0 * x["a"] + 3.0}), figures, 0.95, 1)
+    assert (still.blocks, still.trials, still.is_capped) == (5, 50_000, False)
+
+
+def test_the_uncertainty_over_blocks_is_that_of_all_their_samples() -> None:
+    """Blocks that lie apart, some of whose samples have no answer: against the deviation of all samples at once."""
+    calls = iter(range(100))
+
+    def model(x):
+        place = next(calls)
+        return Sampled({"y": np.where(x["a"] > 0.3 * place, x["a"] + 2.0 * place, np.nan)})
+
+    run = _Propagation(model, [Drawn("a", Normal(5.0, 1.0))], 0.95, 2, {}, 50_000, 1)
+    found = run.run()
+    assert found.is_answered and found.blocks == 5
+    whole = np.concatenate(run.kept["y"]).std(ddof=1)
+    assert run._standard("y") == pytest.approx(whole, rel=1e-12)
+    assert whole > 2.0
+
+
+def test_half_of_the_samples_are_enough() -> None:
+    def of_a_block(answered: int):
+        return lambda x: Sampled({"y": np.where(np.arange(len(x["a"])) < answered, x["a"], np.nan)})
+
+    figures = [Drawn("a", Rectangular(0.5, 0.5))]
+    for answered, enough in ((5_000, True), (4_999, False)):
+        found = propagate(of_a_block(answered), figures, 0.95, 1, most_trials=10_000, together=1)
+        assert found.is_answered is enough
 
 
 def test_samples_without_an_answer_are_counted_and_left_out() -> None:
