@@ -126,8 +126,8 @@ def test_day_one_says_when_the_clean_unit_wants_more_steam_than_there_is(tmp_pat
     assert result.rating is not None and "" in result.rating.answered
     # The duty takes 93 % of the steam; the clean unit would condense more than there is.
     assert not result.open_items
-    found = {check.id: check.state for check in result.rating.answered[""].checks}
-    assert found["duty / heat balance / phase change"] == "outside"
+    found = {(check.id, check.condition): check.state for check in result.rating.answered[""].checks}
+    assert found["duty / heat balance / phase change", "clean"] == "outside"
 
 
 def test_what_the_installed_area_reaches_is_held_against_the_steam(tmp_path: Path) -> None:

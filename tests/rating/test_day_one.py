@@ -1,0 +1,97 @@
+"""Day one: what the clean unit, as it runs and turned down, leaves of limits and bands, and what it does not ask again."""
+
+from __future__ import annotations
+
+import math
+from pathlib import Path
+
+import pytest
+from iapws import IAPWS97
+from rated_units import COOLER, HEATER, solved
+
+from calcbook.chain.outcome import CheckResult
+from calcbook.chain.rating_outcome import DayOne
+from calcbook.library.plausibility import bands
+
+BOILS = "water film / wall phase / boils"
+
+
+def day_of(folder: Path, text: str) -> DayOne:
+    rating = solved(folder, text).rating
+    assert rating is not None and isinstance(rating.answered[""], DayOne)
+    return rating.answered[""]
+
+
+def left(day: DayOne, condition: str) -> dict[str, CheckResult]:
+    """What a state of day one leaves, by id."""
+    return {check.id: check for check in day.checks if check.condition == condition}
+
+
+@pytest.mark.parametrize(
+    ("boiling", "places"),
+    [
+        # Both ends and the mean; steam keeps its temperature, so the wall is hottest at the outlet of the water.
+        (87.4, {"", " at the hot inlet"}),
+        (95.0, {" at the hot inlet"}),
+        (120.0, set()),
+    ],
+)
+def test_water_that_boils_at_the_clean_wall_is_told_at_the_mean_and_at_each_end(
+    tmp_path: Path, boiling: float, places: set[str]
+) -> None:
+    # iapws, an implementation of IAPWS-IF97: the pressure at which water boils at that temperature
+    pressure = IAPWS97(T=boiling + 273.15, x=0.0).P
+    day = day_of(tmp_path, HEATER.replace("value: 5 bara", f"value: {pressure!r} MPa"))
+    cold = day.clean.sides["cold"]
+    assert cold.outlet < 87.3 + 273.15 and 87.5 + 273.15 < cold.surface < 90.0 + 273.15
+    found = {name: check for name, check in left(day, "clean").items() if name.startswith(BOILS)}
+    assert set(found) == {BOILS + place for place in places}
+    assert {check.state for check in found.values()} <= {"outside"}
+
+
+def test_a_flow_that_is_turned_down_far_is_held_against_the_band_of_its_speed(tmp_path: Path) -> None:
+    """By hand: m/(rho·N·pi/4·d_i^2), the density by iapws at the mean of the ends: 1e-3 is between the two equations."""
+    text = COOLER.replace("duty:\n", "duty:\n  throttled: hot\n")
+    text = text.replace("L:      {value: 4.88 m", "L: {value: 16 m").replace("value: 62,", "value: 160,")
+    day = day_of(tmp_path, text)
+    assert day.turned_down is not None
+    hot = day.turned_down.sides["hot"]
+    density = IAPWS97(T=(78.0 + 273.15 + hot.outlet) / 2.0, P=0.4).rho
+    speed = hot.mass_flow / (density * 160.0 * math.pi / 4.0 * 0.01575**2)
+    assert hot.speed == pytest.approx(speed, rel=1e-3)
+    name = "tube-side film / band / velocity of a liquid in tubes"
+    assert speed < bands()["velocity of a liquid in tubes"].low
+    assert left(day, "turned down")[name].value == hot.speed
+    assert name not in left(day, "clean")
+
+
+def test_the_range_of_a_wall_holds_on_day_one_too(tmp_path: Path) -> None:
+    """The card of this aluminium ends at 273 K; the wall of the clean cooler lies above 50 °C."""
+    text = COOLER.replace("stainless-316-kaschnitz-2017", "aluminium-1100-crc")
+    day = day_of(tmp_path, text)
+    assert {name.partition(" / ")[0] for name in left(day, "clean")} == {"tube wall"}
+
+
+def test_the_passes_of_the_geometry_are_not_told_again(tmp_path: Path) -> None:
+    """They are a caution of the calculation, and the clean unit has the same ones."""
+    text = COOLER.replace("parallel: N}", "tubes: N, passes: {value: 2, source: s}}")
+    answer = solved(tmp_path, text)
+    passes = "duty / arrangement / tube passes"
+    assert "outside" in {check.state for check in answer.base.checks if check.id == passes}
+    assert answer.rating is not None and isinstance(answer.rating.answered[""], DayOne)
+    assert passes not in {check.id for check in answer.rating.answered[""].checks}
+
+
+def test_a_caution_of_the_duty_is_told_of_each_state(tmp_path: Path) -> None:
+    """19.4 m^2 are stated for a geometry of 62·pi·0.01905·4.88 = 18.107 m^2: 7 % apart."""
+    text = COOLER.replace("duty:\n", "duty:\n  installed area: {value: 19.4 m^2, source: s}\n")
+    day = day_of(tmp_path, text)
+    for condition in ("clean", "with the allowances"):
+        found = left(day, condition)["duty / area / closely stated"]
+        assert (found.level, found.state) == ("caution", "outside")
+
+
+def test_only_a_side_that_keeps_its_temperature_has_a_pressure_to_be_throttled(tmp_path: Path) -> None:
+    heater, cooler = (day_of(tmp_path, text).clean.sides for text in (HEATER, COOLER))
+    assert heater["hot"].pressure == 2.6e5
+    assert all(math.isnan(side.pressure) for side in (heater["cold"], cooler["hot"], cooler["cold"]))
