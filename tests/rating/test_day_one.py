@@ -95,3 +95,15 @@ def test_only_a_side_that_keeps_its_temperature_has_a_pressure_to_be_throttled(t
     heater, cooler = (day_of(tmp_path, text).clean.sides for text in (HEATER, COOLER))
     assert heater["hot"].pressure == 2.6e5
     assert all(math.isnan(side.pressure) for side in (heater["cold"], cooler["hot"], cooler["cold"]))
+
+
+def test_day_one_takes_the_means_of_its_own_ends(tmp_path: Path) -> None:
+    """74 degC is the mean of the stated ends of the hot stream: day one leaves it for that of the ends it finds."""
+    flow = "    flow: m_hot\n"
+    apart = COOLER.replace(flow, f"{flow}    temperature: {{value: 74 degC, source: s}}\n")
+    assert apart != COOLER
+    by_ends, stated = (day_of(tmp_path, text) for text in (COOLER, apart))
+    assert by_ends.clean.sides["hot"].outlet < 66.0 + 273.15
+    for one, other in zip((by_ends.clean, by_ends.service), (stated.clean, stated.service), strict=True):
+        assert other.heat == pytest.approx(one.heat, rel=1e-12)
+        assert other.overall == pytest.approx(one.overall, rel=1e-12)

@@ -60,6 +60,20 @@ def test_steam_is_throttled_to_the_pressure_at_which_the_clean_heater_gives_the_
     assert margin(tmp_path, HEATER.replace("2.6 bara", f"{0.999 * hot.pressure!r} Pa")) < 0.0
 
 
+def test_a_heater_of_much_spare_area_is_throttled_until_the_steam_is_hardly_warmer(tmp_path: Path) -> None:
+    """Clean it has about eight times the area of the duty: steam within a tenth of its way to the water's outlet."""
+    text = HEATER.replace("2.44 m", "12 m")
+    day = day_of(solved(tmp_path, text))
+    assert day.turned_down is not None
+    hot = day.turned_down.sides["hot"]
+    steam = IAPWS97(P=0.26, x=1.0).T
+    assert 66.0 + 273.15 < hot.outlet < 66.0 + 273.15 + 0.1 * (steam - 66.0 - 273.15)
+    alone = solved(tmp_path, without_deposits(text.replace("2.6 bara", f"{hot.pressure!r} Pa"))).base.results
+    assert alone["area_margin"].value == pytest.approx(0.0, abs=1e-8)
+    # The unit under its control is the clean one.
+    assert day.turned_down.overall == pytest.approx(alone["U_service"].value, rel=1e-9)
+
+
 def test_condensate_that_cannot_leave_is_told_with_the_pressure(tmp_path: Path) -> None:
     """Common practice of steam heaters: below the atmosphere a trap does not pass the condensate."""
     name = "stream steam / band / pressure of a throttled vapour"
