@@ -24,7 +24,7 @@ from calcbook.chain.variants import with_figures
 from calcbook.formulas import number_text
 from calcbook.properties import PropertyFault
 from calcbook.rating.opened import open_chain
-from calcbook.rating.unit_states import MARGIN, NOTHING, Judged, judged, saturation_pressure, unit_state
+from calcbook.rating.unit_states import MARGIN, NOTHING, Judged, judged, pressure_of, unit_state
 
 Array = np.ndarray
 # A flow is looked for down to this part of the stated one.
@@ -74,7 +74,7 @@ def turned_down(chain: Chain, case: CaseOutcome) -> TurnedDown:
     checks = [check for check in left.checks if check.id != MARGIN]
     if throttle.what != FLOW and side == "hot":
         stream = chain.streams[duty.hot.stream]
-        stated = saturation_pressure(stream, case.solutions[SERVICE].number(stream.temperature))
+        stated = pressure_of(stream, case.solutions[SERVICE])
         checks += throttled_vapour(chain, stream, stated, state.sides[side].pressure, label)
     return TurnedDown(state, "", left._replace(checks=tuple(checks)), throttle)
 

@@ -48,15 +48,17 @@ def unit_state(chain: Chain, solution: Solution) -> UnitState:
             solution.number(chain.results[f"T {name} outlet"]),
             solution.number(speed) if speed in solution.values else math.nan,
             solution.number(group.surface_temperature),
-            math.nan if side.has_ends else saturation_pressure(stream, solution.number(stream.temperature)),
+            math.nan if side.has_ends else pressure_of(stream, solution),
             math.nan if side.has_ends else solution.number(chain.results["flow needed"]),
         )
     return UnitState(solution.number(heat), solution.number(chain.results["U"]), sides)
 
 
-def saturation_pressure(stream: StreamState, temperature: float) -> float:
-    """The pressure at which a stream that changes phase has a temperature; NaN where that is not known."""
-    fluid = stream.fluid.state(None, None, stream.phase)
+def pressure_of(stream: StreamState, solution: Solution) -> float:
+    """The pressure of a stream that changes phase, by its temperature where none is stated; NaN where it is not known."""
+    if stream.pressure:
+        return solution.number(stream.pressure)
+    fluid, temperature = stream.fluid.state(None, None, stream.phase), solution.number(stream.temperature)
     return (
         float(fluid.saturation_pressure(temperature, outside="nan"))
         if fluid.has_vapour_pressure
