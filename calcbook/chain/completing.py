@@ -86,8 +86,14 @@ class _Passes:
             gap = came_out - put_in
             agreed = (np.abs(gap) <= AGREEMENT * np.maximum(np.abs(came_out), self.least)).all(axis=0)
             result[:, active[agreed]] = came_out[:, agreed]
-            open_still = ~agreed & np.isfinite(gap).all(axis=0)
+            known = np.isfinite(gap).all(axis=0)
             following = _joined(came_out, gap, before)
+            back = np.zeros_like(known)
+            if before is not None:
+                # Where the straight line led to no value, the way goes on without it from what came out before.
+                back = ~known & (put_in != before[0]).any(axis=0) & np.isfinite(before[0]).all(axis=0)
+                following = np.where(back, before[0], following)
+            open_still = ~agreed & (known | back)
             before = (came_out[:, open_still], gap[:, open_still])
             put_in, active = following[:, open_still], active[open_still]
             for condition, rows in self.unknowns.items():
@@ -150,5 +156,5 @@ def _joined(came_out: Array, gap: Array, before: tuple[Array, Array] | None) -> 
         size = np.abs(came_out)
         change, off = (gap - last_gap) / size, gap / size
         square = (change * change).sum(axis=0)
-        part = np.where(square > 0.0, (change * off).sum(axis=0) / square, 0.0)
-    return came_out - part * (came_out - last)
+        part = (change * off).sum(axis=0) / square
+        return np.where(square > 0.0, came_out - part * (came_out - last), came_out)

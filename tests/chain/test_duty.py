@@ -534,10 +534,10 @@ def test_plugged_tubes_stand_in_the_ledger_beside_the_installed_area(tmp_path: P
     path.write_text(RATED.read_text(encoding="utf-8").replace("parallel: N}", tubes), encoding="utf-8")
     answer = solve_file(path)
     tube = np.pi * 0.01905 * 4.88
-    lines = {row.name: row.area for row in answer.rating.ledger}
+    lines = {row.name: row.area for row in answer.rating.ledger.rows}
     assert lines["plugged tubes"] == pytest.approx(5.0 * tube, rel=1e-12)
     assert figure(answer, "area_installed") == pytest.approx(57.0 * tube, rel=1e-12)
-    assert answer.rating.ledger_sum == pytest.approx(62.0 * tube, rel=1e-12)
+    assert answer.rating.ledger.sum == pytest.approx(62.0 * tube, rel=1e-12)
 
 
 @pytest.mark.parametrize(

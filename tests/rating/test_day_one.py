@@ -6,7 +6,7 @@ import math
 from pathlib import Path
 
 import pytest
-from iapws import IAPWS97
+from iapws import IAPWS95, IAPWS97
 from rated_units import COOLER, HEATER, solved
 
 from calcbook.chain.outcome import CheckResult
@@ -107,3 +107,19 @@ def test_day_one_takes_the_means_of_its_own_ends(tmp_path: Path) -> None:
     for one, other in zip((by_ends.clean, by_ends.service), (stated.clean, stated.service), strict=True):
         assert other.heat == pytest.approx(one.heat, rel=1e-12)
         assert other.overall == pytest.approx(one.overall, rel=1e-12)
+
+
+def test_outlets_are_found_where_a_change_of_regime_feeds_itself(tmp_path: Path) -> None:
+    """Hotter water is thinner, goes over to turbulent flow and grows hotter still: the outlets have an answer all the
+    same, in which heat balance and rate equation agree (by hand, with the printed U, outlets and flow)."""
+    text = HEATER.replace("passes: {value: 2", "passes: {value: 1").replace("2.44 m", "5 m")
+    day = day_of(
+        tmp_path, text.replace("9.5 kg/s", "8.5 kg/s").replace("tubes: {value: 116", "tubes: {value: 400")
+    )
+    area = math.pi * 0.01905 * 5.0 * 400
+    for state in (day.service, day.clean):
+        steam, outlet, inlet = state.sides["hot"].outlet, state.sides["cold"].outlet, 291.15
+        mean = (outlet - inlet) / math.log((steam - inlet) / (steam - outlet))
+        assert state.heat == pytest.approx(state.overall * area * mean, rel=1e-9)
+        water = IAPWS95(T=(inlet + outlet) / 2.0, P=0.5)
+        assert state.heat == pytest.approx(8.5 * 1e3 * water.cp * (outlet - inlet), rel=1e-6)
