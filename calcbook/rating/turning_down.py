@@ -48,7 +48,7 @@ class TurnedDown(NamedTuple):
     throttle: Throttle
 
 
-class _None(Exception):
+class _NoState(Exception):
     """Why there is no turned-down state, in words."""
 
 
@@ -62,7 +62,7 @@ def turned_down(chain: Chain, case: CaseOutcome) -> TurnedDown:
         return TurnedDown(None, "the duty is what the unit reaches, and none is stated", NOTHING, throttle)
     try:
         opened, figures = (_flow if throttle.what == FLOW else _saturation)(chain, case, duty, throttle)
-    except _None as reason:
+    except _NoState as reason:
         return TurnedDown(None, str(reason), NOTHING, throttle)
     one, given = with_figures(opened, opened.case_inputs(case.name), figures)
     given = completed(one, given)
@@ -124,9 +124,9 @@ def _spare(chain: Chain, before: Chain, case: CaseOutcome) -> Callable[[Mapping[
 def _must_spare(spare: float, where: str) -> None:
     """Refuse to look for a state where the clean unit has nothing to spare as it stands."""
     if math.isnan(spare):
-        raise _None(f"the circuit of the clean unit does not close at the duty and {where}")
+        raise _NoState(f"the circuit of the clean unit does not close at the duty and {where}")
     if spare <= 0.0:
-        raise _None(f"the clean unit does not carry the duty: it is {_percent(-spare)} short")
+        raise _NoState(f"the clean unit does not carry the duty: it is {_percent(-spare)} short")
 
 
 def _percent(share: float) -> str:
@@ -144,13 +144,13 @@ def _flow(before: Chain, case: CaseOutcome, duty: Duty, throttle: Throttle) -> t
     side = throttle.side
     flow = before.streams[duty.sides[side].stream].mass_flow
     if f"C {side}" not in before.results or not flow:
-        raise _None(f"the {side} stream has no mass flow that could be turned down")
+        raise _NoState(f"the {side} stream has no mass flow that could be turned down")
     fixed = _stated_without_scale(before, duty.sides[side].stream)
     if fixed:
-        raise _None(f"the coefficient of {fixed} is stated, and nothing says how it follows the flow")
+        raise _NoState(f"the coefficient of {fixed} is stated, and nothing says how it follows the flow")
     chain = open_chain(before, case, side, condition=CLEAN)
     if chain is None:
-        raise _None(f"the duty does not follow from the {throttle.other} stream alone")
+        raise _NoState(f"the duty does not follow from the {throttle.other} stream alone")
     spare = _spare(chain, before, case)
     stated = case.solutions[SERVICE].number(flow)
     low, high = SMALLEST_PART * stated, stated
@@ -159,13 +159,13 @@ def _flow(before: Chain, case: CaseOutcome, duty: Duty, throttle: Throttle) -> t
         points = np.linspace(low, high, POINTS)
         found = spare({flow: points})
         if found[0] > 0.0 and not (found <= 0.0).any():
-            raise _None(
+            raise _NoState(
                 f"the clean unit carries the duty at {_percent(SMALLEST_PART)} of the {side} flow still"
             )
         last, first = _narrowed(found)
         low, high = points[last], points[first]
     if math.isnan(found[last]):
-        raise _None(
+        raise _NoState(
             f"the clean unit carries the duty down to a {side} flow at which its circuit does not close"
         )
     return chain, {flow: np.asarray(high)}
@@ -205,7 +205,7 @@ def _saturation(
     side = throttle.side
     chain = open_chain(before, case)
     if chain is None:
-        raise _None(f"the duty does not follow from the {throttle.other} stream alone")
+        raise _NoState(f"the duty does not follow from the {throttle.other} stream alone")
     stream, spare = chain.streams[duty.sides[side].stream], _spare(chain, before, case)
     nominal = case.solutions[SERVICE]
     stated = nominal.number(stream.temperature)
@@ -236,7 +236,7 @@ def _bracket(spare: Callable[[float], float], way: str, what: str) -> tuple[floa
         high = part
         break
     if math.isnan(high):
-        raise _None(
+        raise _NoState(
             f"the clean unit carries the duty with {_percent(1.0 - LARGEST_PART)} of the temperature difference still"
         )
     for _ in range(HALVINGS):
@@ -245,7 +245,7 @@ def _bracket(spare: Callable[[float], float], way: str, what: str) -> tuple[floa
         if found <= 0.0:
             return low, part
         low, high = (part, high) if found > 0.0 else (low, part)
-    raise _None(f"the clean unit carries the duty {way} to a {what} at which its circuit does not close")
+    raise _NoState(f"the clean unit carries the duty {way} to a {what} at which its circuit does not close")
 
 
 def _at_saturation(stream: StreamState, temperature: float) -> dict[str, Array]:

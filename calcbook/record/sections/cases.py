@@ -17,7 +17,7 @@ from calcbook.record.numbers import (
 )
 from calcbook.record.page import Page, case_name, counted
 from calcbook.record.sections.criteria import CRITERION_COLUMNS, criterion_row
-from calcbook.record.sections.duty import day_one_blocks
+from calcbook.record.sections.day_one import day_one_blocks
 from calcbook.record.sections.growth import time_blocks
 from calcbook.record.sections.uncertainty import uncertainty
 from calcbook.record.sections.validity import verdict
