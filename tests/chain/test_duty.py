@@ -264,6 +264,18 @@ def test_the_largest_allowance_leaves_no_margin(tmp_path: Path) -> None:
     assert figure(again, "area_margin") == pytest.approx(0.0, abs=1e-12)
 
 
+def test_terms_that_share_a_figure_have_one_largest_allowance(tmp_path: Path) -> None:
+    """Both sides take R_fi: put in, what is found leaves no margin, though the films move with the surfaces."""
+    text = RATED.read_text(encoding="utf-8").replace("resistance: R_fo", "resistance: R_fi")
+    text = "".join(line for line in text.splitlines(keepends=True) if "  R_fo:" not in line)
+    path = tmp_path / "rt-2.yaml"
+    path.write_text(text, encoding="utf-8")
+    largest = figure(solve_file(path), "largest_allowance tube-side deposit, shell-side deposit")
+    path.write_text(text.replace("value: 0.00009 m^2 K/W", f"value: {largest!r} m^2 K/W"), encoding="utf-8")
+    # Within the rounding of a closed circuit.
+    assert figure(solve_file(path), "area_margin") == pytest.approx(0.0, abs=1e-11)
+
+
 def test_the_only_allowance_needs_no_name(tmp_path: Path) -> None:
     """The result name of the list without a term stands for that of the only term."""
     answer = solved(tmp_path, length="900 m")

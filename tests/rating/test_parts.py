@@ -51,6 +51,14 @@ def test_parts_are_advised_where_there_can_be_some(tmp_path: Path) -> None:
     assert fault.code == "duty-unreadable" and "shell and tube cannot be cut" in fault.message
 
 
+def test_u_may_differ_by_a_fifth_between_the_ends(tmp_path: Path) -> None:
+    """The bound of common practice: clean U of the heater differs by 24 %, and by less with its allowance."""
+    found = [check for check in solved(tmp_path, HEATER).base.checks if check.id == ALONG]
+    spread = {check.condition: check.value for check in found}
+    assert 0.0 < spread["service"] < 0.2 < spread["clean"] < 0.3
+    assert {check.condition: check.state for check in found} == {"service": "within", "clean": "outside"}
+
+
 def test_a_fouled_unit_in_parts_keeps_service_and_clean_apart(tmp_path: Path) -> None:
     """Each part by hand: the area of a quarter of the duty is Q/(4·U·ΔT_lm) in counterflow, fouled and clean."""
     answer = solved(tmp_path, FOULED)

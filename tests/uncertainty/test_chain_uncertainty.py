@@ -160,6 +160,32 @@ def test_a_limit_that_is_itself_uncertain(tmp_path) -> None:
     assert chance.probability == pytest.approx(0.5, abs=4.0 * chance.deviation)
 
 
+def test_a_limit_may_be_a_derived_figure(tmp_path) -> None:
+    """It moves with what it is derived from: U against 1.0001 and 0.9999 of itself by a derived share of the limit."""
+    value = solved(tmp_path, STATED).base.results["U_service"].value
+    for share, sure in (("0.9999", True), ("1.0001", False)):
+        body = with_tolerance(STATED, R_fi="{standard: 0.0000000001 m^2 K/W}").replace(
+            "givens:\n",
+            f"givens:\n  U_0: {{value: {value!r} W/(m^2 K), is: base of the limit, source: test}}\n",
+        )
+        body = body.replace(
+            "geometry:", f"derived: {{U_lim: {{is: limit, relation: U_0*{share}}}}}\ngeometry:", 1
+        )
+        more = SAMPLED.format("U_service") + "acceptance:\n  - {that: U_service >= U_lim, source: test}\n"
+        chance = solved(tmp_path, body, more).uncertainty.sampling.chances[0]
+        # The tolerance of the deposit moves U by 2e-7 of itself: no sample comes near 1e-4.
+        assert chance.probability == float(sure)
+
+
+def test_what_does_not_foul_has_one_budget_and_what_rests_on_no_tolerance_is_named(tmp_path) -> None:
+    body = with_tolerance(STATED, h_o="10 %", R_fi="0.00005 m^2 K/W")
+    fouled = solved(tmp_path, body).uncertainty
+    assert [one.result for one in fouled.budgets] == ["U_service", "U_clean"]
+    assert fouled.exact_allowances == ("outer deposit",)
+    bare = "".join(line for line in body.splitlines(keepends=True) if "R_f" not in line)
+    assert [one.result for one in solved(tmp_path, bare).uncertainty.budgets] == ["U_service"]
+
+
 def test_few_readings_widen_the_interval(tmp_path) -> None:
     body = with_tolerance(HEATED, T_i="{standard: 1 K, degrees of freedom: 4}")
     found = solved(tmp_path, body, SAMPLED.format("heat_flow_service"))

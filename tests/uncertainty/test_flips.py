@@ -257,6 +257,37 @@ def test_the_search_ends_where_a_quantity_does_by_its_definition(
     assert beyond.figures == () or words.startswith("a hundred")
 
 
+@pytest.mark.parametrize(
+    ("kind", "now", "direction", "last", "words"),
+    [
+        # An allowance may be nothing; without a flow there is no film.
+        ("fouling resistance", 2e-4, -1, 0.0, "zero"),
+        ("mass flow", 3.0, -1, 0.03, "a hundredth of it"),
+        # From zero there is no way below what cannot be negative.
+        ("fouling resistance", 0.0, -1, None, "zero"),
+        ("fouling resistance", 0.0, 1, 1e4, "the end of the search"),
+        # There may be no sealing strip, and there is at least one row of tubes.
+        ("sealing strips", 3.0, -1, 0.0, "none"),
+        ("tube rows", 3.0, -1, 1.0, "one"),
+        ("temperature", 50.0, 1, 250.0, "200 K away"),
+        ("temperature", 300.0, -1, 100.0, "200 K away"),
+    ],
+)
+def test_the_search_ends_where_a_figure_has_no_sense(
+    kind: str, now: float, direction: int, last: float | None, words: str
+) -> None:
+    item = Input("given/x", "x", kind, vocabulary()[kind], now, "", "test", Place("x.yaml"), True)
+    found = reach(item, now, direction, False)
+    assert found.end == words
+    assert (found.figures == ()) if last is None else (found.figures[-1] == pytest.approx(last))
+
+
+def test_no_temperature_below_nothing_is_looked_at() -> None:
+    item = Input("given/T", "T", "T", vocabulary()["temperature"], 50.0, "", "test", Place("x.yaml"), True)
+    figures = reach(item, 50.0, -1, False).figures
+    assert len(figures) > 5 and 0.0 < min(figures) < 50.0
+
+
 # --- both ends of a duty, and the largest allowance ---------------------------------------------------
 
 # Stated coefficients and a stated conductivity: every resistance is as it stands, whatever the temperatures.

@@ -107,6 +107,21 @@ def test_a_sample_without_an_answer_says_why(tmp_path: Path) -> None:
     assert math.isnan(found.results[0].values[7]) and math.isfinite(found.results[0].values[6])
 
 
+def test_what_is_measured_is_swept_between_whole_numbers_too(tmp_path: Path) -> None:
+    """In SI both ends are whole: 400 and 401 W/(m² K)."""
+    sweep = "    sweep: {h_2: {from: 400 W/(m^2 K), to: 401 W/(m^2 K), steps: 3}}\n"
+    found = sweep_in(solved_of(tmp_path, WALL + sweep))
+    assert found.axes[0].figures == (400.0, 400.5, 401.0)
+
+
+def test_a_limit_that_is_a_given_is_no_line_beside_the_samples(tmp_path: Path) -> None:
+    """A sample may move it: only limits written as figures are drawn."""
+    body = WALL.replace("U_service >= 350 W/(m^2 K)", "U_service >= U_min").replace(
+        "    geometry:", "      U_min: {value: 350 W/(m^2 K), is: least U, source: test}\n    geometry:"
+    )
+    assert sweep_in(solved_of(tmp_path, body + ONE)).results[0].limits == ()
+
+
 def test_a_sample_outside_a_range_is_named_and_counted(tmp_path: Path) -> None:
     solved = solved_of(tmp_path, HOT + "    sweep: {m_w: {from: 0.5 kg/s, to: 6.5 kg/s, steps: 4}}\n")
     found = sweep_in(solved)

@@ -10,6 +10,8 @@ import pytest
 from calcbook.chain.outcome import Solved
 from calcbook.faults import Faults
 from calcbook.interface import record_text, solve_file
+from calcbook.uncertainty.assessing import _compared
+from calcbook.uncertainty.sampling import Interval
 
 FILE = """
 calculation:
@@ -75,7 +77,8 @@ def test_a_sample_in_which_no_area_does_counts_against_the_criterion(
     (chance,) = (one for one in answer.uncertainty.sampling.chances if one.id == item.id)
     # Three standard deviations of the share; near the crossing itself the area needed has no bound.
     assert chance.probability == pytest.approx(holds, abs=3.0 * chance.deviation + 1e-3)
-    assert chance.unanswered > 0.9 * (1.0 - holds)
+    # Nearly all that do not hold have no answer, and what has none does not hold.
+    assert 0.9 * (1.0 - holds) < chance.unanswered <= 1.0 - chance.probability + 1e-12
     assert item.met is is_met and item.reached == chance.probability and item.is_met_as_stated
     assert "of the samples have no answer and count against it" in record_text(answer)
 
@@ -85,6 +88,28 @@ def test_a_result_that_nothing_uncertain_moves_has_no_samples(tmp_path: Path) ->
     answer = solved(tmp_path, 55.0)
     assert [one.result for one in answer.uncertainty.sampling.results] == ["area_margin"]
     assert "Nothing that is drawn moves U_service." in record_text(answer)
+
+
+def test_a_margin_above_another_limit_is_held_against_zero_too(tmp_path: Path) -> None:
+    path = tmp_path / "pf-1.yaml"
+    text = FILE.format(outlet="55 degC", tolerance=", tolerance: {standard: 1 K}", correlation="")
+    for limit, ids in (("0", ["criterion 1"]), ("0.1", ["criterion 1", "area_margin > 0"])):
+        path.write_text(text.replace("area_margin >= 0,", f"area_margin >= {limit},"), encoding="utf-8")
+        answer = solve_file(path)
+        assert [one.id for one in answer.uncertainty.sampling.chances] == ids
+
+
+@pytest.mark.parametrize(
+    ("low", "high", "is_validated"), [(0.4, 0.4, True), (0.6, 0.4, False), (0.4, 0.6, False)]
+)
+def test_both_ends_of_an_interval_are_held_against_the_budget(
+    tmp_path: Path, low: float, high: float, is_validated: bool
+) -> None:
+    """JCGM 101:2008, 8.1: both differences are not larger than the tolerance; here 0.5."""
+    budget = solved(tmp_path, 55.0).uncertainty.budgets[0]
+    ends = budget.value - budget.expanded - low, budget.value + budget.expanded + high
+    found = _compared(budget, Interval(budget.value, budget.standard, *ends, (0.0,) * 4, 0.5, 0.1))
+    assert found.is_validated is is_validated
 
 
 def test_samples_that_stopped_before_they_were_steady_validate_nothing(tmp_path: Path) -> None:
