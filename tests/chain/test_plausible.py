@@ -177,6 +177,49 @@ def test_a_metal_with_a_decimal_slipped_is_told_and_an_insulation_is_not_called_
     assert not any(band.startswith("U ") for _, band in held)
 
 
+def held_in(folder: Path, body: str) -> dict[tuple[str, str], float]:
+    """Every figure in service that has a band in its place."""
+    solved = analysed(folder, body)
+    found = figures(solved.chain, solved.base.solutions[SERVICE])
+    return {(figure.owner, figure.band): figure.value for figure in found}
+
+
+def test_a_tube_wall_has_the_thickness_between_its_diameters_and_a_lining_another_band(
+    tmp_path: Path,
+) -> None:
+    """(19.05 − 15.75)/2 mm of the tube; the layer of 0.5 mm about it is a wall, and no tube."""
+    lining = "  - {name: sleeve, kind: wall, material: copper-c12200-cda, thickness: {value: 0.5 mm, source: test}}\n"
+    body = cooler().replace("  - {name: outer deposit,", lining + "  - {name: outer deposit,")
+    assert lining in body
+    held = held_in(tmp_path, body)
+    assert held["tube wall", "tube wall thickness"] == pytest.approx(1.65e-3, rel=1e-12)
+    assert held["sleeve", "metal wall thickness"] == pytest.approx(0.5e-3, rel=1e-12)
+    assert ("sleeve", "tube wall thickness") not in held
+
+
+def test_the_flow_of_one_tube_alone_is_no_flow_per_tube(tmp_path: Path) -> None:
+    """18.2 kg/s in 62 tubes are 0.29 kg/s in each; one tube alone is held by its speed only."""
+    many, one = cooler(), cooler(N="1", m_hot="0.3 kg/s")
+    assert held_in(tmp_path, many)["tube film", "flow per tube"] == pytest.approx(18.2 / 62.0, rel=1e-12)
+    held = held_in(tmp_path, one)
+    assert ("tube film", "flow per tube") not in held
+    assert ("tube film", "velocity of a liquid in tubes") in held
+
+
+def test_a_wall_that_conducts_as_no_metal_does_leaves_no_usual_coefficient(tmp_path: Path) -> None:
+    """A second wall of 0.04 W/(m K) without a card: what its U is depends on its thickness alone."""
+    wall = (
+        "  - {name: cover, kind: wall, thickness: {value: 30 mm, source: test},"
+        " conductivity: {value: CONDUCTIVITY W/(m K), source: test}}\n"
+    )
+    for conductivity, is_usual in (("0.04", False), ("20", True)):
+        cover = wall.replace("CONDUCTIVITY", conductivity)
+        body = STATED.replace("  - {name: outer deposit,", cover + "  - {name: outer deposit,")
+        assert cover in body
+        held = held_in(tmp_path, body)
+        assert any(band.startswith("U ") for _, band in held) is is_usual
+
+
 def test_a_service_holds_its_own_allowance_and_coefficient_against_what_is_typical(tmp_path: Path) -> None:
     stated = cooler(R_fo="0.0045 m^2 K/W")
     named = stated.replace(
