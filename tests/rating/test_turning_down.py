@@ -349,3 +349,17 @@ def test_a_criterion_on_day_one_wants_a_duty(tmp_path: Path) -> None:
         solved(tmp_path, text)
     (fault,) = caught.value.faults
     assert fault.message == "`flow_turned_down` is found only where the file has `duty:`"
+
+
+@pytest.mark.parametrize("pressure", ["1.1 bara", "1.3 bara", "3 bara", "5 bara"])
+def test_a_unit_that_gives_the_duty_does_not_lack_area_by_rounding(tmp_path: Path, pressure: str) -> None:
+    """What is found carries the duty: a margin of nothing is on the side where nothing lacks."""
+    day = day_of(solved(tmp_path, HEATER.replace("value: 5 bara", f"value: {pressure}")))
+    assert day.turned_down is not None
+    assert "duty / area / margin" not in {check.id for check in day.checks}
+
+
+def test_a_heater_that_could_do_with_steam_as_cold_as_the_water_says_so(tmp_path: Path) -> None:
+    """In 20 m the clean unit gives the duty even at 99.9 % of the way to the water's outlet, where the search ends."""
+    day = day_of(solved(tmp_path, HEATER.replace("2.44 m", "20 m")))
+    assert day.turned_down is None and day.no_turn_down
