@@ -474,6 +474,18 @@ class _Analysis:
             kind, words = self.results[criterion.result].kind, "there is no value in this case"
         else:
             return None
+        return self._not_met(number, criterion, case, solutions, kind, words)
+
+    def _not_met(
+        self,
+        number: int,
+        criterion: Criterion,
+        case: str,
+        solutions: Mapping[str, Solution],
+        kind: QuantityKind,
+        words: str,
+    ) -> CriterionResult | None:
+        """A criterion whose value is not there, in words; None after a fault of its limit."""
         limit = self.limit_of(criterion, kind, solutions[SERVICE])
         if limit is None:
             return None
@@ -486,10 +498,7 @@ class _Analysis:
         if is_found_once(criterion.result):
             return self._not_lost(number, criterion, case, solutions)
         kind = vocabulary()[OF_DAY_ONE[criterion.result][0]]
-        limit = self.limit_of(criterion, kind, solutions[SERVICE])
-        if limit is None:
-            return None
-        return _told_in_words(number, criterion, case, kind, float(limit), False, NO_STATE)
+        return self._not_met(number, criterion, case, solutions, kind, NO_STATE)
 
     def _not_lost(
         self, number: int, criterion: Criterion, case: str, solutions: Mapping[str, Solution]

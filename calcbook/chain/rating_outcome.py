@@ -100,6 +100,21 @@ OF_DAY_ONE = {
 FLOW, PRESSURE, TEMPERATURE = "flow", "pressure", "saturation temperature"
 
 
+def in_case(case: str) -> str:
+    """Where something stands, behind its name; nothing for the base case."""
+    return f" in case {case}" if case else ""
+
+
+def state_in(state: str, case: str) -> str:
+    """A state of the unit with the case that it is of; the base case has no name."""
+    return f"{state}, case {case}" if case else state
+
+
+def other_side(side: str) -> str:
+    """The opposite side of a duty."""
+    return "cold" if side == "hot" else "hot"
+
+
 class Throttle(NamedTuple):
     """What the control moves: a side, and of it a flow, a pressure or a temperature; and whether the file says so."""
 
@@ -110,7 +125,7 @@ class Throttle(NamedTuple):
     @property
     def other(self) -> str:
         """The side that keeps what the duty states of it."""
-        return "cold" if self.side == "hot" else "hot"
+        return other_side(self.side)
 
 
 class DayOne(NamedTuple):

@@ -10,7 +10,7 @@ import numpy as np
 from calcbook.chain.completing import completed
 from calcbook.chain.findings import lacking_property, phases_not_checked
 from calcbook.chain.outcome import CaseOutcome
-from calcbook.chain.rating_outcome import WITH_ALLOWANCES, DayOne
+from calcbook.chain.rating_outcome import WITH_ALLOWANCES, DayOne, state_in
 from calcbook.chain.solve import solve
 from calcbook.chain.types import CLEAN, SERVICE, Chain
 from calcbook.rating.opened import open_chain
@@ -40,13 +40,13 @@ def day_one(before: Chain, case: CaseOutcome) -> DayOne | str | None:
             return f"the circuit of {which} does not close at the inlets of the duty" + (
                 f": {why}" if why else ""
             )
-    where = f", case {case.name}" if case.name else ""
     clean, in_service = solutions[CLEAN], solutions[SERVICE]
     turned = turned_down(before, case)
     with_allowances = tuple(
-        check._replace(condition=f"{WITH_ALLOWANCES}{where}") for check in limits_of_duty(chain, in_service)
+        check._replace(condition=state_in(WITH_ALLOWANCES, case.name))
+        for check in limits_of_duty(chain, in_service)
     )
-    as_it_runs = judged(clean_chain, completed(clean_chain, inputs), clean, f"clean{where}")
+    as_it_runs = judged(clean_chain, completed(clean_chain, inputs), clean, state_in("clean", case.name))
     service_state = unit_state(chain, in_service)
     clean_state = unit_state(clean_chain, clean)
     return DayOne(

@@ -22,11 +22,15 @@ def open_chain(chain: Chain, case: CaseOutcome, *sides: str, condition: str = SE
     duty = chain.calculation.duty
     assert duty is not None
     with_inlets = {name: _with_inlet(chain, case, name, side) for name, side in duty.sides.items()}
-    key = (open_chain, sides, condition, "" if with_inlets == duty.sides else case.name)
-    if key not in chain.memory:
-        opened = _opened(chain, with_inlets, sides)
-        chain.memory[key] = opened if opened is None else _found_in(opened, condition)
-    found: Chain | None = chain.memory[key]
+    built = (_opened, sides, "" if with_inlets == duty.sides else case.name)
+    if built not in chain.memory:
+        chain.memory[built] = _opened(chain, with_inlets, sides)
+    opened: Chain | None = chain.memory[built]
+    if opened is None:
+        return None
+    if (_found_in, condition) not in opened.memory:
+        opened.memory[_found_in, condition] = _found_in(opened, condition)
+    found: Chain = opened.memory[_found_in, condition]
     return found
 
 

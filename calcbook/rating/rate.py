@@ -6,7 +6,7 @@ from collections.abc import Sequence
 from dataclasses import replace
 
 from calcbook.chain.outcome import CaseOutcome, Result, Solved
-from calcbook.chain.rating_outcome import OF_DAY_ONE, DayOne, Rating
+from calcbook.chain.rating_outcome import OF_DAY_ONE, DayOne, Rating, in_case
 from calcbook.chain.types import Chain, OpenItem
 from calcbook.library import vocabulary
 from calcbook.rating.day_one import day_one
@@ -46,7 +46,7 @@ def _open_items(rating: Rating, case: str) -> list[OpenItem]:
     reason = rating.unanswered.get(case)
     if not reason:
         return []
-    where = f" in case {case}" if case else ""
+    where = in_case(case)
     return [OpenItem(f"day one{where}", "check", f"Day one has no answer{where}: {reason}.")]
 
 

@@ -17,7 +17,16 @@ from calcbook.calcfile.calculation import Duty, DutySide
 from calcbook.chain.completing import completed
 from calcbook.chain.outcome import CaseOutcome
 from calcbook.chain.plausible import throttled_vapour
-from calcbook.chain.rating_outcome import FLOW, PRESSURE, TEMPERATURE, TURNED_DOWN, Throttle, UnitState
+from calcbook.chain.rating_outcome import (
+    FLOW,
+    PRESSURE,
+    TEMPERATURE,
+    TURNED_DOWN,
+    Throttle,
+    UnitState,
+    other_side,
+    state_in,
+)
 from calcbook.chain.solve import solve
 from calcbook.chain.types import CLEAN, SERVICE, Chain, StreamState
 from calcbook.chain.variants import with_figures
@@ -35,8 +44,7 @@ POINTS, ROUNDS = 41, 6
 STEPS, LARGEST_PART, KNOWN, HALVINGS = 12, 0.999, 1e-9, 20
 # Common practice: what a control takes where the file does not say. The pressure of steam, and that of a refrigerant,
 # which is called by its number (ISO 817) or is one of these; else the flow of the stream that serves the other.
-STEAM = "Water"
-REFRIGERANTS = re.compile(r"RC?\d.*|Ammonia|CarbonDioxide")
+USUALLY_THROTTLED = {"hot": re.compile("Water"), "cold": re.compile(r"RC?\d.*|Ammonia|CarbonDioxide")}
 
 
 class TurnedDown(NamedTuple):
@@ -68,7 +76,7 @@ def turned_down(chain: Chain, case: CaseOutcome) -> TurnedDown:
     given = completed(one, given)
     solution = solve(one, given, CLEAN)
     state = unit_state(one, solution)
-    label = f"{TURNED_DOWN}, case {case.name}" if case.name else TURNED_DOWN
+    label = state_in(TURNED_DOWN, case.name)
     left = judged(one, given, solution, label)
     # The state is the one that leaves no margin.
     checks = [check for check in left.checks if check.id != MARGIN]
@@ -85,14 +93,11 @@ def throttled_side(chain: Chain) -> str:
     assert duty is not None
     if duty.throttled:
         return duty.throttled
-    fluids = {
-        name: chain.streams[side.stream].fluid.fixed for name, side in duty.sides.items() if not side.has_ends
-    }
-    hot, cold = fluids.get("hot"), fluids.get("cold")
-    if "hot" in fluids:
-        return "hot" if hot is not None and hot.name == STEAM else "cold"
-    if "cold" in fluids:
-        return "cold" if cold is not None and REFRIGERANTS.fullmatch(cold.name) else "hot"
+    for name, side in duty.sides.items():
+        fluid = chain.streams[side.stream].fluid.fixed
+        if not side.has_ends:
+            is_usual = fluid is not None and USUALLY_THROTTLED[name].fullmatch(fluid.name)
+            return name if is_usual else other_side(name)
     return "cold"
 
 
@@ -219,7 +224,7 @@ def _saturation(
 
     _must_spare(at(0.0), f"the stated {throttle.what}")
     low, high = _bracket(at, "down" if side == "hot" else "up", throttle.what)
-    part = low if at(high) == 0.0 else brentq(at, low, high, xtol=KNOWN / abs(way))
+    part = brentq(at, low, high, xtol=KNOWN / abs(way))
     return chain, _at_saturation(stream, stated + part * way)
 
 

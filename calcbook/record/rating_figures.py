@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Iterator
 
-from calcbook.chain.rating_outcome import DayOne, Parts, Rating, UnitState
+from calcbook.chain.rating_outcome import DayOne, Parts, Rating, UnitState, in_case
 from calcbook.library import vocabulary
 from calcbook.quantities import QuantityKind
 
@@ -16,13 +16,12 @@ def rating_figures(rating: Rating) -> Figures:
     """Name, value in SI and kind of every figure of the ledger, the parts and day one, in order."""
     kinds = vocabulary()
     for case, ledger in rating.ledgers.items():
-        where = f" in case {case}" if case else ""
         for row in ledger.rows:
-            yield f"ledger{where} / {row.name}", row.area, kinds["area"]
+            yield f"ledger{in_case(case)} / {row.name}", row.area, kinds["area"]
     if rating.parts is not None:
         yield from _parts(rating.parts)
     for case, day in rating.told.items():
-        yield from _day_one(day, f" in case {case}" if case else "")
+        yield from _day_one(day, in_case(case))
 
 
 def _parts(parts: Parts) -> Figures:

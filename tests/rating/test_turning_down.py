@@ -78,8 +78,10 @@ def test_condensate_that_cannot_leave_is_told_with_the_pressure(tmp_path: Path) 
     """Common practice of steam heaters: below the atmosphere a trap does not pass the condensate."""
     name = "stream steam / band / pressure of a throttled vapour"
     answer = solved(tmp_path, HEATER)
-    pressure = day_of(answer).turned_down.sides["hot"].pressure  # type: ignore[union-attr]
-    found = [check for check in day_of(answer).checks if check.id == name]
+    day = day_of(answer)
+    assert day.turned_down is not None
+    pressure = day.turned_down.sides["hot"].pressure
+    found = [check for check in day.checks if check.id == name]
     assert [(check.condition, check.level, check.state) for check in found] == [
         ("turned down", "caution", "outside")
     ]

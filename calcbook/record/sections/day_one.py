@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 
+from calcbook.calcfile.calculation import DutySide
 from calcbook.chain.plausible import THROTTLED_VAPOUR, site_pressure
 from calcbook.chain.rating_outcome import (
     FLOW,
@@ -11,6 +12,7 @@ from calcbook.chain.rating_outcome import (
     WITH_ALLOWANCES,
     DayOne,
     UnitState,
+    in_case,
 )
 from calcbook.library import vocabulary
 from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Table
@@ -39,11 +41,12 @@ def day_one_blocks(page: Page) -> list[Block]:
     if rating is None or not rating.days:
         return []
     blocks: list[Block] = [Heading(3, "Day one")]
+    told = rating.told
     for case, day in rating.days.items():
-        where = f" in case {case}" if case else ""
+        where = in_case(case)
         if isinstance(day, str):
             blocks.append(Paragraph(f"Day one has no answer{where}: {day}."))
-        elif case not in rating.told:
+        elif case not in told:
             blocks.append(Paragraph(f"In case {case} the clean unit does what it does in the base case."))
         else:
             blocks += [*([Heading(4, f"Day one{where}")] if case else []), *_day_blocks(page, day, case)]
@@ -105,7 +108,7 @@ def _day_blocks(page: Page, day: DayOne, case: str) -> list[Block]:
 def _control(page: Page, day: DayOne) -> str:
     """What the control moves for the last state, and who says so."""
     throttle = day.throttle
-    stream = _stream_of(page, throttle.side)
+    stream = _side(page, throttle.side).stream
     moved = f"{throttle.side} flow" if throttle.what == FLOW else f"{throttle.what} of {stream}"
     last = (
         f", and clean with the {moved} {way_of(day)} until {until_words(page, day)}"
@@ -127,28 +130,28 @@ def way_of(day: DayOne) -> str:
 
 def until_words(page: Page, day: DayOne) -> str:
     """What the control stops at."""
-    duty, other = page.calculation.duty, day.throttle.other
-    assert duty is not None
-    if duty.sides[other].has_ends and duty.sides[other].open_end != "outlet":
-        return f"the {other} stream leaves as the duty states"
+    if _holds_outlet(page, day):
+        return f"the {day.throttle.other} stream leaves as the duty states"
     return "the unit gives the duty"
 
 
-def _has_ends(page: Page, side: str) -> bool:
+def _holds_outlet(page: Page, day: DayOne) -> bool:
+    """Whether the side that is not throttled has a stated outlet, which the control holds."""
+    other = _side(page, day.throttle.other)
+    return other.has_ends and other.open_end != "outlet"
+
+
+def _side(page: Page, name: str) -> DutySide:
     duty = page.calculation.duty
     assert duty is not None
-    return duty.sides[side].has_ends
+    return duty.sides[name]
 
 
 def _end_of(page: Page, side: str) -> str:
     """What the temperature of a side at its end is called."""
-    return f"outlet of the {side} stream" if _has_ends(page, side) else f"saturation of the {side} stream"
-
-
-def _stream_of(page: Page, side: str) -> str:
-    duty = page.calculation.duty
-    assert duty is not None
-    return duty.sides[side].stream
+    return (
+        f"outlet of the {side} stream" if _side(page, side).has_ends else f"saturation of the {side} stream"
+    )
 
 
 def _state_rows(page: Page, states: list[UnitState]) -> list[tuple[str, ...]]:
@@ -167,7 +170,7 @@ def _state_rows(page: Page, states: list[UnitState]) -> list[tuple[str, ...]]:
             row(_end_of(page, name), "temperature", [side.outlet for side in sides]),
             row(f"surface on the {name} side, at the means", "temperature", [side.surface for side in sides]),
         ]
-        if any(math.isfinite(side.mass_flow) for side in sides) or _has_ends(page, name):
+        if any(math.isfinite(side.mass_flow) for side in sides) or _side(page, name).has_ends:
             rows.append(row(f"flow of the {name} stream", "mass flow", [side.mass_flow for side in sides]))
         if any(math.isfinite(side.changing) for side in sides):
             does = "condenses" if name == "hot" else "evaporates"
@@ -183,11 +186,7 @@ def _state_rows(page: Page, states: list[UnitState]) -> list[tuple[str, ...]]:
 
 def _with(page: Page, day: DayOne) -> str:
     """What the unit gives in its turned-down state, at the head of a sentence."""
-    return (
-        f"With the stated {day.throttle.other} outlet"
-        if "leaves" in until_words(page, day)
-        else "With the stated duty"
-    )
+    return f"With the stated {f'{day.throttle.other} outlet' if _holds_outlet(page, day) else 'duty'}"
 
 
 def _of_saturation(page: Page, day: DayOne) -> list[str]:
@@ -195,27 +194,29 @@ def _of_saturation(page: Page, day: DayOne) -> list[str]:
     throttle, state = day.throttle, day.turned_down
     if throttle.what == FLOW or state is None:
         return []
-    stream = _stream_of(page, throttle.side)
+    stream = _side(page, throttle.side).stream
     if throttle.side == "cold":
         return [
             f"Stream {stream} stands above its stated state then: design pressure and relief must allow for that."
         ]
     over = state.sides["hot"].pressure - site_pressure(page.chain)
-    found = [f"Stream {stream} is taken as saturated; behind a throttling valve it is a little superheated."]
+    saturated = [
+        f"Stream {stream} is taken as saturated; behind a throttling valve it is a little superheated."
+    ]
     if any(check.id.endswith(THROTTLED_VAPOUR) for check in day.checks):
         return [
             f"Stream {stream} stands below the pressure of the site then: air leaks in and the condensate does not leave by a"
             " trap, so that the unit fills with it until enough surface is covered, unless a pump draws it. The clean unit"
             " knows no allowance: only less installed area raises that pressure.",
-            *found,
+            *saturated,
         ]
-    if over > 0.0:
-        pressure = in_report_unit(over, vocabulary()["pressure"], page.calculation.report, CONCLUSION_DIGITS)
-        found.insert(
-            0,
-            f"Stream {stream} stands {pressure} above the pressure of the site then: that drives its condensate out.",
-        )
-    return found
+    if not over > 0.0:
+        return saturated
+    pressure = in_report_unit(over, vocabulary()["pressure"], page.calculation.report, CONCLUSION_DIGITS)
+    return [
+        f"Stream {stream} stands {pressure} above the pressure of the site then: that drives its condensate out.",
+        *saturated,
+    ]
 
 
 def throttled_words(page: Page, day: DayOne, state: UnitState) -> str:
@@ -236,7 +237,7 @@ def throttled_words(page: Page, day: DayOne, state: UnitState) -> str:
         for one in (state, day.service)
     )
     word = "an absolute pressure" if throttle.what == PRESSURE else f"a {throttle.what}"
-    return f"{word} of {now} of {_stream_of(page, throttle.side)} in place of {stated}"
+    return f"{word} of {now} of {_side(page, throttle.side).stream} in place of {stated}"
 
 
 def _sentences(page: Page, day: DayOne) -> tuple[str, ...]:
@@ -252,7 +253,7 @@ def _sentences(page: Page, day: DayOne) -> tuple[str, ...]:
             f"The surface on the cold side is {kelvin(day.hotter)} hotter clean than with the allowances: what"
             " deposits faster on a hot surface starts there."
         )
-    if day.colder > HOTTER and _has_ends(page, "hot"):
+    if day.colder > HOTTER and _side(page, "hot").has_ends:
         found.append(
             f"The surface on the hot side is {kelvin(day.colder)} colder clean than with the allowances: what sets, freezes"
             " or condenses on a cold surface starts there."
