@@ -574,6 +574,15 @@ class _Analysis:
     def _read_limit(self, quantity: Quantity | None, kind: QuantityKind, place: Place) -> float | None:
         """The SI value of a limit, read as the quantity that it limits; None after a fault."""
         assert quantity is not None, "a figure of the file has a value here"
+        if kind.reading == "absolute" and quantity.reading == "gauge":
+            self.judging.add(
+                "unit-dimension",
+                place,
+                "the limit counts from the pressure of the site, and the result is absolute",
+                found=shown(quantity.text),
+                expected="an absolute pressure, such as 1.15 bara",
+            )
+            return None
         try:
             return as_kind(quantity, kind).value
         except QuantityFault as error:

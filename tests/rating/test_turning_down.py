@@ -365,3 +365,11 @@ def test_a_heater_that_could_do_with_steam_as_cold_as_the_water_says_so(tmp_path
     """In 20 m the clean unit gives the duty even at 99.9 % of the way to the water's outlet, where the search ends."""
     day = day_of(solved(tmp_path, HEATER.replace("2.44 m", "20 m")))
     assert day.turned_down is None and day.no_turn_down
+
+
+def test_a_gauge_limit_of_an_absolute_pressure_is_a_fault(tmp_path: Path) -> None:
+    """0.15 barg is 1.16 bar absolute: read as 0.15 bar it would be met by steam that is below the atmosphere."""
+    with pytest.raises(Faults) as caught:
+        solved(tmp_path, HEATER + "acceptance:\n  - {that: pressure_turned_down >= 0.15 barg, source: s}\n")
+    (fault,) = caught.value.faults
+    assert fault.code == "unit-dimension" and fault.found == "0.15 barg"
