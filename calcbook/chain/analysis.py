@@ -48,7 +48,7 @@ from calcbook.chain.pressure import (
     pressure_drop_checks,
     pressure_items,
 )
-from calcbook.chain.rating_outcome import OF_DAY_ONE
+from calcbook.chain.rating_outcome import FLOW_RESULT, OF_DAY_ONE
 from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.solve import Solution, chosen, closed, conditions_of, solve_both
 from calcbook.chain.specified import OWNER as SPECIFIED
@@ -530,7 +530,9 @@ class _Analysis:
             message,
             found=name,
             expected=", ".join(results),
-            nearest=nearest_names(criterion.result, results),
+            nearest=nearest_names(
+                criterion.result, (*results, *OF_DAY_ONE) if self._is_asked(FLOW_RESULT) else results
+            ),
         )
 
     def limit_of(self, criterion: Criterion, kind: QuantityKind, solution: Solution) -> Array | None:
