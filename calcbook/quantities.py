@@ -300,14 +300,20 @@ class _Atom(NamedTuple):
 _READY: dict[str, _Atom] = {
     "m": _Atom(Fraction(1), _dimension(1, 0, 0, 0, 0)),
     "mm": _Atom(Fraction(1, 1000), _dimension(1, 0, 0, 0, 0)),
+    "um": _Atom(Fraction(1, 1000000), _dimension(1, 0, 0, 0, 0)),
     "kg": _Atom(Fraction(1), _dimension(0, 1, 0, 0, 0)),
+    "g": _Atom(Fraction(1, 1000), _dimension(0, 1, 0, 0, 0)),
+    "t": _Atom(Fraction(1000), _dimension(0, 1, 0, 0, 0)),
     "s": _Atom(Fraction(1), _dimension(0, 0, 1, 0, 0)),
+    "min": _Atom(Fraction(60), _dimension(0, 0, 1, 0, 0)),
     "h": _Atom(Fraction(3600), _dimension(0, 0, 1, 0, 0)),
     "K": _Atom(Fraction(1), _TEMPERATURE),
     "degC": _Atom(Fraction(1), _TEMPERATURE, Fraction("273.15")),
     "N": _Atom(Fraction(1), _dimension(1, 1, -2, 0, 0)),
     "Pa": _Atom(Fraction(1), _PRESSURE),
+    "mPa": _Atom(Fraction(1, 1000), _PRESSURE),
     "kPa": _Atom(Fraction(1000), _PRESSURE),
+    "MPa": _Atom(Fraction(1000000), _PRESSURE),
     "bar": _Atom(Fraction(100000), _PRESSURE),
     "J": _Atom(Fraction(1), _dimension(2, 1, -2, 0, 0)),
     "kJ": _Atom(Fraction(1000), _dimension(2, 1, -2, 0, 0)),
@@ -1159,7 +1165,8 @@ def in_unit(value_si: float, unit_text: str, point: bool = False) -> float:
 
 def _offset(unit: _Unit) -> Fraction:
     """Where the scale of a unit by itself starts, in SI; zero for one without a scale."""
-    atom = _atom(unit.sole_name)
+    name = unit.sole_name
+    atom = _atom(name) if name else None
     return atom.offset if atom else Fraction(0)
 
 

@@ -14,7 +14,9 @@ import pytest
 ROOT = Path(__file__).resolve().parents[1]
 
 
-def run_book(output: Path, cwd: Path, cache: Path, **environment: str) -> dict[str, bytes]:
+def run_book(
+    output: Path, cwd: Path, cache: Path, calculations: str = "calcs", **environment: str
+) -> dict[str, bytes]:
     kept = {
         name: value
         for name, value in os.environ.items()
@@ -23,7 +25,7 @@ def run_book(output: Path, cwd: Path, cache: Path, **environment: str) -> dict[s
     before = environment.pop("PYTHONPATH", "")
     path = os.pathsep.join(filter(None, [before, str(ROOT), kept.get("PYTHONPATH", "")]))
     done = subprocess.run(
-        [sys.executable, "-m", "calcbook", "run", str(ROOT / "calcs"), "--output", str(output)],
+        [sys.executable, "-m", "calcbook", "run", str(ROOT / calculations), "--output", str(output)],
         cwd=cwd,
         env={**kept, "PYTHONPATH": path, "CALCBOOK_CACHE": str(cache), **environment},
         capture_output=True,
@@ -62,12 +64,16 @@ def contents(folder: Path) -> dict[str, bytes]:
     return {path.name: path.read_bytes() for path in folder.rglob("*.json")}
 
 
+def refuse(folder: Path, package: str) -> None:
+    """Put a package that refuses to be imported where it stands in front of the installed one."""
+    (folder / package).mkdir()
+    (folder / package / "__init__.py").write_text("raise ImportError('asked for')\n", encoding="utf-8")
+
+
 def test_a_repeat_run_gives_the_same_bytes_and_needs_no_backend(cold: Cold, tmp_path: Path) -> None:
     elsewhere = tmp_path / "a folder with blanks"
     elsewhere.mkdir()
-    # A backend that refuses to be imported stands in front of the installed one.
-    (tmp_path / "CoolProp").mkdir()
-    (tmp_path / "CoolProp/__init__.py").write_text("raise ImportError('asked for')\n", encoding="utf-8")
+    refuse(tmp_path, "CoolProp")
     cache = cold.cache_in(tmp_path)
     warm = run_book(
         tmp_path / "out",
@@ -81,6 +87,14 @@ def test_a_repeat_run_gives_the_same_bytes_and_needs_no_backend(cold: Cold, tmp_
     )
     assert warm == cold.files
     assert contents(cache) == cold.kept
+
+
+def test_a_repeat_run_of_a_file_in_si_units_needs_no_unit_library(cold: Cold, tmp_path: Path) -> None:
+    refuse(tmp_path, "pint")
+    calculation, cache = "calcs/wc-101.yaml", cold.cache_in(tmp_path)
+    warm = run_book(tmp_path / "out", tmp_path, cache, calculation, PYTHONPATH=str(tmp_path))
+    assert set(warm) == {"WC-101/record.md", "WC-101/results.json"}
+    assert warm == {name: cold.files[name] for name in warm}
 
 
 def test_a_damaged_foreign_or_stale_cache_gives_the_same_bytes_and_is_made_anew(
