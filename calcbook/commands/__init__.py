@@ -8,6 +8,7 @@ not converge; 4 a mistake of calcbook itself in a calculation; 130 interrupted.
 
 from __future__ import annotations
 
+import atexit
 import gc
 import importlib
 
@@ -18,7 +19,9 @@ import calcbook
 INTERRUPTED = 130
 # A record takes some hundred thousand objects and leaves few circles among them: looked for as often as Python
 # does by itself, they cost a twentieth of a run.
-COLLECT_AFTER = (50_000, 5, 5)
+COLLECT_AFTER = (200_000, 5, 5)
+# A process that ends gives all its memory back: to look for circles in it before costs another twentieth.
+atexit.register(gc.freeze)
 COMMANDS = (
     "run",
     "watch",
