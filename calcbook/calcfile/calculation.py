@@ -188,6 +188,7 @@ CUT_ARRANGEMENTS = ("counterflow", "parallel flow")
 class Duty:
     """What the unit has to transfer: arrangement of the flows, both streams, parts that it is cut into.
 
+    ``heat_flow`` is the duty where it is stated; None where the heat balances give it, or the unit itself.
     ``installed_area`` is that of the drawing on the surface of U; None where the geometry gives it. ``throttled`` is the
     side that the control acts on; empty where the file does not say.
     """
@@ -200,6 +201,7 @@ class Duty:
     place: Place
     installed_area: Value | None = None
     throttled: str = ""
+    heat_flow: Value | None = None
 
     @property
     def sides(self) -> dict[str, DutySide]:
@@ -208,8 +210,8 @@ class Duty:
     @property
     def can_be_cut(self) -> bool:
         """Whether parts follow each other along the unit: flows that pass end to end, or one that keeps its temperature."""
-        keeps = not all(side.has_ends for side in self.sides.values())
-        return keeps or self.arrangement in CUT_ARRANGEMENTS
+        keep = [not side.has_ends for side in self.sides.values()]
+        return not all(keep) and (any(keep) or self.arrangement in CUT_ARRANGEMENTS)
 
     def names(self, stream: str) -> bool:
         """Whether a stream stands on one of the sides."""

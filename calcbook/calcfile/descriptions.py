@@ -203,6 +203,12 @@ DUTY = Description(
         Key("cold", "the stream that warms", "mapping", of=DUTY_SIDE, required=True),
         Key("parts", "equal parts of the duty along the unit, each with its own U", "name", example="4"),
         Key(
+            "heat flow",
+            "heat flow that the unit has to transfer; left out, that of the heat balances, or what the unit reaches",
+            "node",
+            of=SOURCED,
+        ),
+        Key(
             "installed area",
             "area of the unit on the surface of U; left out, that of the geometry",
             "node",

@@ -34,6 +34,7 @@ def read_duty(reader: Reader) -> Duty | None:
         node.place,
         reader.value(fields.node("installed area")),
         fields.text("throttled"),
+        reader.value(fields.node("heat flow")),
     )
     _check(reader, duty, fields)
     return duty
@@ -101,11 +102,14 @@ def _check(reader: Reader, duty: Duty, fields: Fields) -> None:
             "no installed area: that of the geometry is of the open tubes",
         )
     if "parts" in fields and duty.arrangement and not duty.can_be_cut:
+        alike = not any(side.has_ends for side in duty.sides.values())
         _refuse(
             reader,
             fields.place_of("parts"),
-            f"{duty.arrangement} cannot be cut into parts that follow each other",
-            f"{' or '.join(CUT_ARRANGEMENTS)}, or no parts",
+            "between two streams that keep their temperatures every part is like the whole"
+            if alike
+            else f"{duty.arrangement} cannot be cut into parts that follow each other",
+            "no parts" if alike else f"{' or '.join(CUT_ARRANGEMENTS)}, or no parts",
         )
 
 

@@ -45,6 +45,8 @@ Array = np.ndarray
 OWNER, AGAIN = "duty", "duty again"
 # The check of the passes of the geometry: the same in every state of the unit.
 PASSES = "arrangement / tube passes"
+# Where one stream keeps its temperature; of two the side follows the words.
+FLOW_NEEDED = "flow needed"
 SIDES = ("hot", "cold")
 # Balances of plant data close within these parts of the duty; beyond the first the flows or temperatures are
 # not those of one state, beyond the second they cannot be rated.
@@ -87,7 +89,7 @@ class DutyLayout:
     results: dict[str, str] = field(default_factory=dict)
     checks: list[ChainCheck] = field(default_factory=list)
     open_figures: list[OpenFigure] = field(default_factory=list)
-    isothermal: str = ""
+    isothermal: tuple[str, ...] = ()
     states: dict[str, StreamState] = field(default_factory=dict)
 
     # -- before the streams ---------------------------------------------------------------------------
@@ -140,13 +142,15 @@ class DutyLayout:
         for name in SIDES:
             self._capacity(name)
             self._mean_check(name)
-        heats = [self._heat(name) for name in SIDES if self._has_heat(name)]
-        if not heats:
+        heats = {name: self._heat(name) for name in SIDES if self._has_heat(name)}
+        if self.duty.heat_flow is not None:
+            self._stated_heat(self.duty.heat_flow, heats)
+        elif not heats:
             return self._by_effectiveness()
-        if len(heats) == 2:
-            self._mean_heat(*heats)
+        elif len(heats) == 2:
+            self._mean_heat(heats["hot"], heats["cold"])
         else:
-            self.results["duty"] = heats[0]
+            (self.results["duty"],) = heats.values()
         for name in SIDES:
             self._from_heat(name)
         self._end_checks()
@@ -160,14 +164,7 @@ class DutyLayout:
                 "inlet: … and outlet: …, or a stream with temperature: saturation",
             )
             return False
-        if self.isothermal:
-            self._fault(
-                side.place,
-                "both streams of the duty keep their temperature",
-                "a stream with ends; between two saturated streams no `duty:`, and criteria on U or the heat flow",
-            )
-            return False
-        self.isothermal = name
+        self.isothermal = (*self.isothermal, name)
         self.results |= {f"T {name} inlet": state.temperature, f"T {name} outlet": state.temperature}
         self.scope.assume(
             f"{OWNER}/{name}/isothermal",
@@ -180,7 +177,7 @@ class DutyLayout:
     def _capacity(self, name: str) -> None:
         """The capacity flow of a side whose mass flow is known."""
         state = self.states[name]
-        if name == self.isothermal or not state.mass_flow:
+        if name in self.isothermal or not state.mass_flow:
             return
         heat_capacity = self.scope.step(
             f"stream {state.name}/heat capacity",
@@ -279,6 +276,39 @@ class DutyLayout:
             "heat flow",
         )
 
+    def _stated_heat(self, stated: Value, heats: Mapping[str, str]) -> None:
+        """The duty as the file states it, and the heat balance of every stream that has one beside it."""
+        duty = self.results["duty"] = self.scope.value(stated, "heat flow", OWNER, "heat flow")
+        self._check(
+            "heat balance / heat flow",
+            "Q_d > 0",
+            "stop",
+            "a duty is heat from the hot stream to the cold one",
+            {"Q_d": duty},
+        )
+        for name, heat in heats.items():
+            mark = name[0]
+            closure = self.results[f"closure {name}"] = self._step(
+                f"{name}/closure",
+                f"e_{mark}",
+                f"closure error of the heat balance of the {name} stream",
+                f"(Q_{mark} - Q_d)/Q_d",
+                {f"Q_{mark}": heat, "Q_d": duty},
+                "its heat balance beside the stated heat flow",
+                "ratio",
+            )
+            self._closure_checks(f"{name} closure", f"e_{mark}", closure)
+
+    def _closure_checks(self, name: str, symbol: str, closure: str) -> None:
+        for level, limit in (("caution", CLOSURE_CAUTION), ("range", CLOSURE_RANGE)):
+            self._check(
+                f"heat balance / {name} {level}",
+                f"abs({symbol}) <= {limit}",
+                level,
+                "the two streams must carry one heat: flows or temperatures are not of one state",
+                {symbol: closure},
+            )
+
     def _mean_heat(self, hot: str, cold: str) -> None:
         self.results["duty"] = self._step(
             "Q",
@@ -298,19 +328,12 @@ class DutyLayout:
             "heat balance",
             "ratio",
         )
-        for level, limit in (("caution", CLOSURE_CAUTION), ("range", CLOSURE_RANGE)):
-            self._check(
-                f"heat balance / closure {level}",
-                f"abs(e_Q) <= {limit}",
-                level,
-                "the two streams must carry one heat: flows or temperatures are not of one state",
-                {"e_Q": closure},
-            )
+        self._closure_checks("closure", "e_Q", closure)
 
     def _from_heat(self, name: str) -> None:
         """What the duty gives for a side: the end that is open, or its capacity where its flow is not stated."""
         side = self.duty.sides[name]
-        if name == self.isothermal:
+        if name in self.isothermal:
             return
         known = f"C {name}" in self.results
         if side.open_end and not known:
@@ -355,15 +378,16 @@ class DutyLayout:
         self.open_figures.append(OpenFigure(self.results[f"T {name} {end}"], found, SERVICE, known, far))
 
     def _by_effectiveness(self) -> bool:
-        """No stated end gives the duty: both streams need their flow and leave their outlet open."""
+        """Nothing stated gives the duty: both streams that change their temperature need their flow and leave their outlet
+        open."""
         for name, side in self.duty.sides.items():
-            if name == self.isothermal:
+            if name in self.isothermal:
                 continue
             if side.outlet is not None or f"C {name}" not in self.results:
                 self._fault(
                     side.place,
                     "the duty follows from neither stream",
-                    "flow and both ends of one stream, or the flows of both streams and no outlet",
+                    "flow and both ends of one stream, the flows of both streams and no outlet, or heat flow: …",
                 )
                 return False
         self._end_checks()
@@ -381,6 +405,14 @@ class DutyLayout:
             f"T_{mark}o": self.results[f"T {name} outlet"],
         }
 
+    def _inlets(self) -> dict[str, str]:
+        return {"T_hi": self.results["T hot inlet"], "T_ci": self.results["T cold inlet"]}
+
+    @property
+    def _keep_both(self) -> bool:
+        """Whether both streams keep their temperatures."""
+        return len(self.isothermal) == len(SIDES)
+
     def _end_checks(self) -> None:
         """The temperatures must fall along the hot stream, rise along the cold one, and start hot above cold."""
         self._check(
@@ -388,10 +420,10 @@ class DutyLayout:
             "T_hi > T_ci",
             "stop",
             "heat flows from the hot inlet to the cold one",
-            {"T_hi": self.results["T hot inlet"], "T_ci": self.results["T cold inlet"]},
+            self._inlets(),
         )
         for name, that in (("hot", "T_hi > T_ho"), ("cold", "T_co > T_ci")):
-            if name != self.isothermal:
+            if name not in self.isothermal:
                 self._check(
                     f"ends / {name} stream",
                     that,
@@ -414,7 +446,7 @@ class DutyLayout:
             self._reached(overall, area)
             self._changes_phase(self.results["heat reached"])
             for name in SIDES:
-                if name != self.isothermal:
+                if name not in self.isothermal:
                     self._found_end(name, "outlet", self.results["heat reached"])
             return
         self._difference()
@@ -457,7 +489,8 @@ class DutyLayout:
             "overall coefficient",
         )
         self._reached(overall, area)
-        self._second_way(area)
+        if not self._keep_both:
+            self._second_way(area)
 
     def _installed(self, area: str) -> str:
         """The stated area of the unit, held against that of the geometry; the latter where none is stated."""
@@ -472,16 +505,16 @@ class DutyLayout:
         return stated
 
     def _changes_phase(self, heat: str) -> None:
-        """The flow of the saturated stream that the heat needs, beside the stated one."""
-        state = self.states.get(self.isothermal)
-        if state is None:
-            return
-        self.results["flow needed"] = flow_needed(self.scope, state, heat, OWNER)
-        if state.mass_flow:
-            changed = changed_part(self.scope, state, heat, OWNER)
-            self.results[f"{PHASE_CHANGE} {state.name}"] = changed
-            self._flow_check(self.isothermal)
-            self._check("heat balance / phase change", WHOLE_FLOW, "range", BECAUSE, {"x_pc": changed})
+        """The flow of every saturated stream that the heat needs, beside the stated one."""
+        for name in self.isothermal:
+            state, mark = self.states[name], f" {name}" if self._keep_both else ""
+            self.results[f"{FLOW_NEEDED}{mark}"] = flow_needed(self.scope, state, heat, OWNER)
+            if state.mass_flow:
+                changed = changed_part(self.scope, state, heat, OWNER)
+                self.results[f"{PHASE_CHANGE} {state.name}"] = changed
+                self._flow_check(name)
+                figures = {"x_pc": changed}
+                self._check(f"heat balance / phase change{mark}", WHOLE_FLOW, "range", BECAUSE, figures)
 
     def _streams_have_films(self, elements: tuple[Element, ...]) -> bool:
         groups = [element for element in elements if isinstance(element, Group)]
@@ -544,7 +577,20 @@ class DutyLayout:
         self.results["F"] = self._card(FACTORS[self.duty.arrangement], figures, words={"mixed": mixed})
 
     def _reached(self, overall: str, area: str) -> None:
-        """The heat that the installed area transfers from the same inlets, by effectiveness."""
+        """The heat that the installed area transfers from the same inlets, by effectiveness; between two streams that keep
+        their temperatures by their difference."""
+        if self._keep_both:
+            figures = {"U": overall, "A_inst": area, **self._inlets()}
+            self.results["heat reached"] = self._step(
+                "heat reached",
+                "Q_r",
+                "heat that the installed area reaches",
+                "U*A_inst*(T_hi - T_ci)",
+                figures,
+                "rate equation; both streams keep their temperatures",
+                "heat flow",
+            )
+            return
         units = self._units(overall, "U", area, "")
         self.results |= {"NTU": units}
         effectiveness = self._effectiveness(units, OWNER)
@@ -564,7 +610,7 @@ class DutyLayout:
     def _least(self) -> str:
         """The smaller capacity flow."""
         if self.isothermal:
-            return self.results["C cold" if self.isothermal == "hot" else "C hot"]
+            return self.results["C cold" if "hot" in self.isothermal else "C hot"]
         return self._step(
             "C_min",
             "C_min",
@@ -603,12 +649,7 @@ class DutyLayout:
             symbol,
             title,
             "eps*C_min*(T_hi - T_ci)",
-            {
-                "eps": effectiveness,
-                "C_min": self._least(),
-                "T_hi": self.results["T hot inlet"],
-                "T_ci": self.results["T cold inlet"],
-            },
+            {"eps": effectiveness, "C_min": self._least(), **self._inlets()},
             "effectiveness",
             "heat flow",
         )
@@ -697,7 +738,11 @@ class DutyLayout:
 _RESULTS = (
     ("duty", "duty", "heat flow", "duty"),
     ("closure", "closure", "ratio", "closure error of the heat balances"),
-    ("flow_needed", "flow needed", "mass flow", "flow of the saturated stream that its heat balance needs"),
+    ("closure_hot", "closure hot", "ratio", "closure error of the hot stream to the stated heat flow"),
+    ("closure_cold", "closure cold", "ratio", "closure error of the cold stream to the stated heat flow"),
+    ("flow_needed", FLOW_NEEDED, "mass flow", "flow of the saturated stream that its heat balance needs"),
+    ("flow_needed_hot", f"{FLOW_NEEDED} hot", "mass flow", "flow of the hot stream that condenses"),
+    ("flow_needed_cold", f"{FLOW_NEEDED} cold", "mass flow", "flow of the cold stream that evaporates"),
     ("T_hot_inlet", "T hot inlet found", "temperature", "inlet of the hot stream, found"),
     ("T_cold_inlet", "T cold inlet found", "temperature", "inlet of the cold stream, found"),
     ("T_hot_outlet", "T hot outlet", "temperature", "outlet of the hot stream"),

@@ -32,7 +32,9 @@ class EndState:
 
 def has_ends(chain: Chain) -> bool:
     """Whether the circuit can be closed at the ends of a duty as well."""
-    return chain.calculation.duty is not None and chain.has_temperatures
+    duty = chain.calculation.duty
+    changes = duty is not None and any(side.has_ends for side in duty.sides.values())
+    return changes and chain.has_temperatures
 
 
 def end_states(

@@ -61,7 +61,7 @@ class Parts(NamedTuple):
 
 
 class SideState(NamedTuple):
-    """One side of the unit in one state: flow, outlet, speed (NaN where not known), wetted surface.
+    """One side of the unit in one state: flow, outlet, speed (NaN where not known), wetted surface, film coefficient.
 
     ``pressure`` is that of a stream that changes phase and ``changing`` the flow that does so, NaN for others.
     """
@@ -70,6 +70,7 @@ class SideState(NamedTuple):
     outlet: float
     speed: float
     surface: float
+    coefficient: float
     pressure: float
     changing: float
 

@@ -53,12 +53,20 @@ def _opened(before: Chain, with_inlets: Mapping[str, DutySide], sides: Sequence[
     }
     changed = replace(
         calculation,
-        duty=replace(duty, hot=opened["hot"], cold=opened["cold"], parts=1),
+        duty=replace(
+            duty,
+            hot=opened["hot"],
+            cold=opened["cold"],
+            parts=1,
+            # Beside one stated outlet a stated heat flow still is the duty.
+            heat_flow=duty.heat_flow if len(sides) < len(opened) else None,
+        ),
         streams=streams,
     )
     collector = Collector()
     chain = build(changed, before.library, collector, cross_check=False)
-    return chain if chain is not None and not collector and (chain.open_figures or not sides) else None
+    is_open = chain is not None and (chain.open_figures or not open_streams)
+    return chain if is_open and not collector else None
 
 
 def _with_inlet(chain: Chain, case: CaseOutcome, name: str, side: DutySide) -> DutySide:

@@ -10,8 +10,9 @@ import numpy as np
 
 from calcbook.chain.analysis import clean_surface_criteria
 from calcbook.chain.checks import evaluate_check
+from calcbook.chain.circuit import branch_coefficient
+from calcbook.chain.duty import FLOW_NEEDED, PASSES
 from calcbook.chain.duty import OWNER as DUTY
-from calcbook.chain.duty import PASSES
 from calcbook.chain.ends import end_checks, end_states
 from calcbook.chain.findings import wall_checks
 from calcbook.chain.outcome import CheckResult, CriterionResult
@@ -48,10 +49,16 @@ def unit_state(chain: Chain, solution: Solution) -> UnitState:
             solution.number(chain.results[f"T {name} outlet"]),
             solution.number(speed) if speed in solution.values else math.nan,
             solution.number(group.surface_temperature),
+            solution.number(branch_coefficient(group, branch.name)),
             math.nan if side.has_ends else pressure_of(stream, solution),
-            math.nan if side.has_ends else solution.number(chain.results["flow needed"]),
+            math.nan if side.has_ends else solution.number(_flow_needed(chain, name)),
         )
     return UnitState(solution.number(heat), solution.number(chain.results["U"]), sides)
+
+
+def _flow_needed(chain: Chain, side: str) -> str:
+    """The id of the flow of a saturated stream that the heat needs."""
+    return chain.results.get(FLOW_NEEDED) or chain.results[f"{FLOW_NEEDED} {side}"]
 
 
 def pressure_of(stream: StreamState, solution: Solution) -> float:

@@ -1,4 +1,4 @@
-"""Units with a duty: a cooler, a steam heater, one with a stated film, and a chiller (all invented)."""
+"""Units with a duty: a cooler, a steam heater, one with a stated film, a chiller, an evaporator (all invented)."""
 
 from __future__ import annotations
 
@@ -60,6 +60,24 @@ CHILLER = (
     .replace("cold: {stream: water, inlet", "hot: {stream: water, inlet")
     .replace("T_ci: {value: 18 degC", "T_ci: {value: 14 degC")
     .replace("T_co: {value: 66 degC", "T_co: {value: 9 degC")
+)
+# Steam outside, pentane that boils inside: both keep their temperatures, and the duty is stated.
+EVAPORATOR = (
+    HEATER.replace(
+        "water: {fluid: water, pressure: {value: 5 bara, source: sheet}, flow: m_w}",
+        "pentane: {fluid: n-pentane, phase: liquid, temperature: saturation, pressure: {value: 3 bara, source: sheet}}",
+    )
+    .replace(
+        "  m_w:  {value: 9.5 kg/s,  is: water flow, ",
+        "  Q_ev: {value: 1500 kW,  is: heat of the evaporator, ",
+    )
+    .replace("  T_ci: {value: 18 degC,   is: water inlet,           source: sheet}\n", "")
+    .replace("  T_co: {value: 66 degC,   is: water outlet,          source: sheet}\n", "")
+    .replace(
+        "{name: water film, kind: film, stream: water, situation: inside-tube}",
+        "{name: boiling film, kind: film, stream: pentane, coefficient: {value: 6000 W/(m^2 K), source: s}, on: inside}",
+    )
+    .replace("{stream: water, inlet: T_ci, outlet: T_co}", "{stream: pentane}\n  heat flow: Q_ev")
 )
 
 

@@ -60,8 +60,7 @@ def _day_blocks(page: Page, day: DayOne, case: str) -> list[Block]:
     what = (
         f"The same states at the inlets of case {case}."
         if case and "" in page.days
-        else "The unit at the inlets of the duty, its outlets found by effectiveness: with its allowances and clean, as it"
-        f" runs uncontrolled{_control(page, day)}"
+        else f"The unit at {_kept_words(page)}: with its allowances and clean, as it runs uncontrolled{_control(page, day)}"
     )
     if page.calculation.duty is not None and page.calculation.duty.parts > 1:
         what += " Every state is one mean state of the whole unit, not of its parts."
@@ -103,6 +102,15 @@ def _day_blocks(page: Page, day: DayOne, case: str) -> list[Block]:
             Table(columns, tuple(criterion_row(item, page) for item in day.criteria)),
         ]
     return blocks
+
+
+def _kept_words(page: Page) -> str:
+    """What stays of the duty in every state of day one, and what is found."""
+    duty = page.calculation.duty
+    assert duty is not None
+    if any(side.has_ends for side in duty.sides.values()):
+        return "the inlets of the duty, its outlets found by effectiveness"
+    return "the saturation temperatures of both streams"
 
 
 def _control(page: Page, day: DayOne) -> str:
@@ -169,6 +177,11 @@ def _state_rows(page: Page, states: list[UnitState]) -> list[tuple[str, ...]]:
         rows += [
             row(_end_of(page, name), "temperature", [side.outlet for side in sides]),
             row(f"surface on the {name} side, at the means", "temperature", [side.surface for side in sides]),
+            row(
+                f"film coefficient on the {name} side",
+                "film coefficient",
+                [side.coefficient for side in sides],
+            ),
         ]
         if any(math.isfinite(side.mass_flow) for side in sides) or _side(page, name).has_ends:
             rows.append(row(f"flow of the {name} stream", "mass flow", [side.mass_flow for side in sides]))

@@ -83,29 +83,45 @@ def _arrangement(page: Page) -> list[tuple[str, str, str]]:
     duty = page.calculation.duty
     if duty is None:
         return []
+    if not all(side.has_ends for side in duty.sides.values()):
+        basis = "stated in `duty:`; beside a stream that keeps its temperature all have one mean difference"
+    else:
+        basis = "stated in `duty:`; it decides the mean difference"
     shells = (
         f", {counted(duty.shells, 'shell', 'shells')} in series"
         if duty.arrangement == "shell and tube"
         else ""
     )
-    return [
-        ("Arrangement", f"{duty.arrangement}{shells}", "stated in `duty:`; it decides the mean difference")
-    ]
+    return [("Arrangement", f"{duty.arrangement}{shells}", basis)]
 
 
 def _reached_basis(page: Page) -> str:
     """What the heat that is reached rests on, and whether a saturated stream has that much."""
     day = page.days.get("")
-    words = "effectiveness, from the same inlets, with U at the stated means"
+    if "effectiveness" in page.chain.results:
+        words = "effectiveness, from the same inlets, with U at the stated means"
+    else:
+        words = "U_service·A_installed·ΔT between both saturation temperatures"
     left = [check for check in (day.checks if day is not None else ()) if check.condition == WITH_ALLOWANCES]
     return f"{words}; {left[0].id}: {left[0].figure}, limit {left[0].limit}, outside" if left else words
 
 
 def _duty_basis(page: Page) -> str:
-    closure = page.result("closure")
+    duty, closure = page.calculation.duty, page.result("closure")
+    if duty is not None and duty.heat_flow is not None:
+        return f"as stated{_beside_stated(page)}"
     if closure is None:
         return "heat balance of one stream"
     return f"mean of both heat balances, which differ by {percent(closure.value, 2)}"
+
+
+def _beside_stated(page: Page) -> str:
+    """How far the heat balances of the streams lie off the stated duty."""
+    closures = {name: page.result(f"closure_{name}") for name in ("hot", "cold")}
+    words = [
+        f"of the {name} stream {percent(one.value, 2)}" for name, one in closures.items() if one is not None
+    ]
+    return f"; off it by heat balance: {', '.join(words)}" if words else ""
 
 
 # --- section 7 --------------------------------------------------------------------------------------

@@ -1,0 +1,181 @@
+"""A duty that the file states: between two streams that keep their temperatures, and beside heat balances."""
+
+from __future__ import annotations
+
+import math
+from pathlib import Path
+
+import pytest
+from CoolProp.CoolProp import PropsSI
+from iapws import IAPWS97
+from rated_units import COOLER, EVAPORATOR, HEATER, solved
+
+from calcbook.chain.outcome import CheckResult, Solved
+from calcbook.chain.rating_outcome import DayOne
+from calcbook.faults import Faults
+from calcbook.interface import NotConverged, record_text, solve_file
+
+DUTY = 1500e3
+NO_DUTY = EVAPORATOR.replace("\n  heat flow: Q_ev", "").replace(
+    "  Q_ev: {value: 1500 kW,  is: heat of the evaporator,             source: sheet}\n", ""
+)
+
+
+def figures(answer: Solved) -> dict[str, float]:
+    return {name: result.value for name, result in answer.base.results.items()}
+
+
+def checks_of(answer: Solved, name: str) -> list[CheckResult]:
+    return [check for check in answer.base.checks if check.id == name]
+
+
+def day_of(answer: Solved) -> DayOne:
+    assert answer.rating is not None
+    return answer.rating.answered[""]
+
+
+def test_a_stated_duty_between_two_streams_that_keep_their_temperatures(tmp_path: Path) -> None:
+    found = figures(solved(tmp_path, EVAPORATOR))
+    # Saturation of steam by iapws (IAPWS-IF97), of pentane by the backend itself; their latent heats beside them.
+    vapour, condensate = IAPWS97(P=0.26, x=1.0), IAPWS97(P=0.26, x=0.0)
+    boiling = PropsSI("T", "P", 3e5, "Q", 0, "n-Pentane")
+    latent = PropsSI("H", "P", 3e5, "Q", 1, "n-Pentane") - PropsSI("H", "P", 3e5, "Q", 0, "n-Pentane")
+    difference = vapour.T - boiling
+    # The industrial formulation lies 2 mK beside IAPWS-95 there.
+    assert found["LMTD"] == pytest.approx(difference, abs=0.004)
+    area = math.pi * 0.01905 * 2.44 * 116
+    assert found["area_installed"] == pytest.approx(area, rel=1e-12)
+    assert found["area_service"] == pytest.approx(DUTY / (found["U_service"] * difference), rel=1e-4)
+    assert found["area_margin"] == pytest.approx(area / found["area_service"] - 1.0, rel=1e-12)
+    assert found["heat_reached_service"] == pytest.approx(found["U_service"] * area * difference, rel=1e-4)
+    assert found["U_required"] == pytest.approx(DUTY / (area * difference), rel=1e-4)
+    assert found["flow_needed_hot"] == pytest.approx(DUTY / (1e3 * (vapour.h - condensate.h)), rel=1e-4)
+    assert found["flow_needed_cold"] == pytest.approx(DUTY / latent, rel=1e-9)
+    assert not {"flow_needed", "NTU_service", "effectiveness_service", "F"} & set(found)
+    assert not any("at the hot inlet" in name for name in found)
+
+
+def test_between_two_such_streams_the_control_turns_down_the_steam_until_the_unit_gives_the_duty(
+    tmp_path: Path,
+) -> None:
+    day = day_of(solved(tmp_path, EVAPORATOR))
+    assert day.turned_down is not None and day.throttle == ("hot", "pressure", False)
+    assert day.turned_down.heat == pytest.approx(DUTY, rel=1e-12)
+    hot = day.turned_down.sides["hot"]
+    alone = EVAPORATOR.replace("0.00018 m^2 K/W", "0 m^2 K/W")
+    margins = [
+        figures(solved(tmp_path, alone.replace("2.6 bara", f"{part * hot.pressure!r} Pa")))["area_margin"]
+        for part in (1.0, 0.999)
+    ]
+    assert margins[0] == pytest.approx(0.0, abs=1e-8) and margins[1] < 0.0
+    # Uncontrolled it takes what U, area and both saturations give; by hand with its own U.
+    area, boiling = math.pi * 0.01905 * 2.44 * 116, PropsSI("T", "P", 3e5, "Q", 0, "n-Pentane")
+    clean = day.clean
+    assert clean.heat == pytest.approx(clean.overall * area * (IAPWS97(P=0.26, x=1.0).T - boiling), rel=1e-4)
+
+
+def test_the_resistances_of_day_one_follow_from_its_film_coefficients(tmp_path: Path) -> None:
+    """1/U = 1/h_o + r_o ln(r_o/r_i)/k + (r_o/r_i)/h_i, plane figures of a clean tube: by hand."""
+    day = day_of(solved(tmp_path, EVAPORATOR))
+    inner, outer = 0.5 * 0.01575, 0.5 * 0.01905
+    assert day.turned_down is not None
+    for state in (day.clean, day.turned_down):
+        by_hand = (
+            1.0 / state.sides["hot"].coefficient
+            + outer * math.log(outer / inner) / 15.0
+            + outer / inner / state.sides["cold"].coefficient
+        )
+        assert state.sides["cold"].coefficient == pytest.approx(6000.0, rel=1e-12)
+        assert 1.0 / state.overall == pytest.approx(by_hand, rel=1e-9)
+
+
+def test_without_a_stated_duty_it_is_what_the_unit_reaches(tmp_path: Path) -> None:
+    answer = solved(tmp_path, NO_DUTY)
+    found = figures(answer)
+    area = found["area_installed"]
+    difference = IAPWS97(P=0.26, x=1.0).T - PropsSI("T", "P", 3e5, "Q", 0, "n-Pentane")
+    assert found["heat_reached_service"] == pytest.approx(found["U_service"] * area * difference, rel=1e-4)
+    assert found["heat_reached_service"] == pytest.approx(abs(found["heat_flow_service"]), rel=1e-12)
+    assert "area_margin" not in found and "duty" not in found
+    day = day_of(answer)
+    assert day.turned_down is None and "none is stated" in day.no_turn_down
+    assert day.clean.heat > day.service.heat == pytest.approx(found["heat_reached_service"], rel=1e-12)
+
+
+def test_heat_balances_stand_beside_a_stated_duty(tmp_path: Path) -> None:
+    """Kern's rule of a rating: the heat of either stream is the duty; closure errors by hand, (Q − Q_d)/Q_d."""
+    before = figures(solved(tmp_path, COOLER))
+    stated = 1.02 * before["duty"]
+    answer = solved(tmp_path, with_heat(COOLER, stated))
+    found = figures(answer)
+    assert found["duty"] == stated
+    both = before["closure"]
+    assert found["closure_hot"] == pytest.approx((1.0 + both / 2.0) / 1.02 - 1.0, rel=1e-9)
+    assert found["closure_cold"] == pytest.approx((1.0 - both / 2.0) / 1.02 - 1.0, rel=1e-9)
+    assert found["area_service"] == pytest.approx(1.02 * before["area_service"], rel=1e-12)
+    assert "closure" not in found
+    assert "off it by heat balance: of the hot stream -" in record_text(answer).replace("−", "-")
+
+
+@pytest.mark.parametrize(
+    ("part", "caution", "range_"),
+    [(1.02, "within", "within"), (1.08, "outside", "within"), (1.2, "outside", "outside")],
+)
+def test_a_stated_duty_that_no_heat_balance_gives_is_told(
+    tmp_path: Path, part: float, caution: str, range_: str
+) -> None:
+    heat = figures(solved(tmp_path, COOLER))["duty"]
+    answer = solved(tmp_path, with_heat(COOLER, part * heat))
+    for level, state in (("caution", caution), ("range", range_)):
+        states = {check.state for check in checks_of(answer, f"duty / heat balance / hot closure {level}")}
+        assert states == {state}
+
+
+def test_an_outlet_is_found_from_the_stated_duty(tmp_path: Path) -> None:
+    text = HEATER.replace(", outlet: T_co", "").replace(
+        "  T_co: {value: 66 degC,   is: water outlet,          source: sheet}\n", ""
+    )
+    found = figures(solved(tmp_path, with_heat(text, 1.2e6)))
+    # By hand, with the heat capacity of water between its ends (within 0.5 %).
+    assert found["T_cold_outlet"] == pytest.approx(291.15 + 1.2e6 / (9.5 * 4183.0), rel=5e-4)
+    assert found["duty"] == 1.2e6 and math.isfinite(found["area_margin"])
+
+
+def with_heat(text: str, heat: float) -> str:
+    return text.replace("duty:\n", f"duty:\n  heat flow: {{value: {heat!r} W, source: data sheet}}\n")
+
+
+def test_a_duty_below_zero_is_no_number(tmp_path: Path) -> None:
+    with pytest.raises((Faults, NotConverged)) as told:
+        solved(tmp_path, EVAPORATOR.replace("1500 kW", "-1500 kW"))
+    assert "heat" in str(told.value)
+
+
+def test_a_temperature_cross_between_two_such_streams_is_no_number(tmp_path: Path) -> None:
+    with pytest.raises((Faults, NotConverged)):
+        solved(tmp_path, EVAPORATOR.replace("2.6 bara", "0.2 bara"))
+
+
+def test_parts_of_a_unit_along_which_nothing_changes_are_a_fault(tmp_path: Path) -> None:
+    with pytest.raises(Faults) as told:
+        solved(tmp_path, EVAPORATOR.replace("heat flow: Q_ev", "heat flow: Q_ev\n  parts: 4"))
+    (fault,) = told.value.faults
+    assert fault.code == "duty-unreadable" and "every part is like the whole" in fault.message
+
+
+def test_the_distance_to_flip_of_a_stated_duty_is_what_the_unit_reaches(tmp_path: Path) -> None:
+    path = tmp_path / "td-1.yaml"
+    path.write_text(
+        EVAPORATOR + "acceptance:\n  - {that: area_margin >= 0, source: sheet}\n", encoding="utf-8"
+    )
+    answer = solve_file(path)
+    assert answer.flips is not None
+    flip = next(one for one in answer.flips.of_kind("criterion") if one.input.symbol == "Q_ev")
+    assert flip.at == pytest.approx(figures(answer)["heat_reached_service"], rel=1e-8)
+
+
+def test_a_record_says_what_the_heat_rests_on(tmp_path: Path) -> None:
+    text = record_text(solved(tmp_path, EVAPORATOR))
+    assert "| Duty | 1 500 000 W | as stated |" in text.replace("\u2009", " ")
+    assert "U_service·A_installed·ΔT between both saturation temperatures" in text
+    assert "The unit at the saturation temperatures of both streams" in text
