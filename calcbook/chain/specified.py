@@ -18,6 +18,7 @@ from calcbook.library.cards import practice_limit
 
 OWNER = "fouling"
 CLEAN_U, WHOLE, FOUND = f"{OWNER}/U clean", f"{OWNER}/R whole", f"{OWNER}/R found"
+SPECIFIED_FIGURES = (CLEAN_U, WHOLE)
 # Where the clean U, W/(m² K), and the resistance, m² K/W, are looked for from.
 FIRST_U, FIRST_R = 500.0, 1e-4
 # What the resistance must be, from what it is and the U in service with it.

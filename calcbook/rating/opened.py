@@ -5,26 +5,33 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from dataclasses import replace
 
+import numpy as np
+
 from calcbook.calcfile.calculation import DutySide, Value
 from calcbook.chain.build import build
 from calcbook.chain.outcome import CaseOutcome
+from calcbook.chain.specified import SPECIFIED_FIGURES
 from calcbook.chain.types import SERVICE, Chain
 from calcbook.faults import Collector
 from calcbook.quantities import read_any
+
+Array = np.ndarray
 
 
 def open_chain(chain: Chain, case: CaseOutcome, *sides: str, condition: str = SERVICE) -> Chain | None:
     """The calculation in one part, with the outlets of some sides open and the means of their ends; None where it has a
     fault.
 
-    What is open is found in the ``condition``. An inlet that the file leaves open stays where it was found in the case.
+    What is open is found in the ``condition``. An inlet that the file leaves open stays where it was found in the case,
+    and so does a fouling that is specified for the whole unit.
     """
     duty = chain.calculation.duty
     assert duty is not None
     with_inlets = {name: _with_inlet(chain, case, name, side) for name, side in duty.sides.items()}
-    built = (_opened, sides, "" if with_inlets == duty.sides else case.name)
+    fouling = _specified_fouling(chain, case)
+    built = (_opened, sides, case.name if fouling or with_inlets != duty.sides else "")
     if built not in chain.memory:
-        chain.memory[built] = _opened(chain, with_inlets, sides)
+        chain.memory[built] = _opened(chain, with_inlets, sides, fouling)
     opened: Chain | None = chain.memory[built]
     if opened is None:
         return None
@@ -41,7 +48,18 @@ def _found_in(chain: Chain, condition: str) -> Chain:
     )
 
 
-def _opened(before: Chain, with_inlets: Mapping[str, DutySide], sides: Sequence[str]) -> Chain | None:
+def _specified_fouling(chain: Chain, case: CaseOutcome) -> dict[str, Array]:
+    """What was found in a case for a fouling that is specified for the whole unit, by id."""
+    return {
+        item.id: case.solutions[item.condition].figure(item.id)
+        for item in chain.open_figures
+        if item.id in SPECIFIED_FIGURES
+    }
+
+
+def _opened(
+    before: Chain, with_inlets: Mapping[str, DutySide], sides: Sequence[str], held: Mapping[str, Array]
+) -> Chain | None:
     calculation, duty = before.calculation, before.calculation.duty
     assert duty is not None
     opened = dict(with_inlets)
@@ -65,8 +83,12 @@ def _opened(before: Chain, with_inlets: Mapping[str, DutySide], sides: Sequence[
     )
     collector = Collector()
     chain = build(changed, before.library, collector, cross_check=False)
-    is_open = chain is not None and (chain.open_figures or not open_streams)
-    return chain if is_open and not collector else None
+    if chain is None or collector:
+        return None
+    open_figures = tuple(item for item in chain.open_figures if item.id not in held)
+    if open_streams and not open_figures:
+        return None
+    return replace(chain, constants={**chain.constants, **held}, open_figures=open_figures)
 
 
 def _with_inlet(chain: Chain, case: CaseOutcome, name: str, side: DutySide) -> DutySide:

@@ -7,7 +7,7 @@ from pathlib import Path
 
 import pytest
 from iapws import IAPWS95, IAPWS97
-from rated_units import COOLER, HEATER, solved
+from rated_units import COOLER, EVAPORATOR, HEATER, solved
 
 from calcbook.chain.outcome import CheckResult
 from calcbook.chain.rating_outcome import DayOne
@@ -123,3 +123,30 @@ def test_outlets_are_found_where_a_change_of_regime_feeds_itself(tmp_path: Path)
         assert state.heat == pytest.approx(state.overall * area * mean, rel=1e-9)
         water = IAPWS95(T=(inlet + outlet) / 2.0, P=0.5)
         assert state.heat == pytest.approx(8.5 * 1e3 * water.cp * (outlet - inlet), rel=1e-6)
+
+
+@pytest.mark.parametrize("text", [HEATER, EVAPORATOR])
+def test_a_specified_fouling_stays_what_it_is_in_the_states_of_day_one(tmp_path: Path, text: str) -> None:
+    """As with the same resistance stated in m² K/W, in every case; the specified one is found anew in each."""
+    case = "cases:\n  less steam:\n    p_st: {value: 2 bara, source: sheet}\n"
+    specified = (
+        text.replace("resistance: R_f, on: inside", "on: inside")
+        .replace("  R_f:  {value: 0.00018 m^2 K/W, is: allowance,       source: sheet}\n", "")
+        .replace("report:", "fouling specified as: {cleanliness: 85 %, split: {deposit: 100 %}}\nreport:")
+    )
+    answer = solved(tmp_path, specified + case)
+    assert answer.rating is not None and set(answer.rating.days) == {"", "less steam"}
+    resistances = []
+    for number, name in enumerate(answer.rating.days):
+        assert name not in answer.rating.unanswered
+        resistance = answer.cases[number].results["R deposit service"].value
+        resistances.append(resistance)
+        on_the_bore = resistance * 15.75 / 19.05
+        alone = solved(tmp_path, text.replace("0.00018 m^2 K/W", f"{on_the_bore!r} m^2 K/W") + case)
+        assert alone.rating is not None
+        found, stated = answer.rating.answered[name], alone.rating.answered[name]
+        for one, other in ((found.service, stated.service), (found.clean, stated.clean)):
+            assert one.heat == pytest.approx(other.heat, rel=1e-9)
+            assert one.overall == pytest.approx(other.overall, rel=1e-9)
+        assert found.moved == pytest.approx(stated.moved, rel=1e-9)
+    assert resistances[0] != pytest.approx(resistances[1], rel=1e-4)
