@@ -63,12 +63,14 @@ class Flips(NamedTuple):
 
     Within a kind stands first what its own tolerance reaches, then the nearest.
 
-    ``unsettled`` names in words what flips somewhere, but at no figure with a few digits.
+    ``unsettled`` names in words what flips somewhere, but at no figure with a few digits. ``left_out`` are the criteria
+    that are not searched.
     """
 
     flips: tuple[Flip, ...]
     searched: tuple[Searched, ...]
     unsettled: tuple[str, ...] = ()
+    left_out: tuple[str, ...] = ()
 
     def of_kind(self, kind: str) -> tuple[Flip, ...]:
         """The flips of one kind, nearest first."""

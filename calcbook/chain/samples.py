@@ -42,6 +42,7 @@ from calcbook.chain.flips_outcome import CONTROLLING, CRITERION, LIMIT, METHOD
 from calcbook.chain.outcome import CaseOutcome
 from calcbook.chain.possible import impossible_steps
 from calcbook.chain.pressure import drops, evaluate_pressure_drops, law_choice
+from calcbook.chain.rating_outcome import OF_DAY_ONE
 from calcbook.chain.solve import Solution, conditions_of, halves_of, numbers_in, solve_both
 from calcbook.chain.term_rows import CONTROLLING_SHARE
 from calcbook.chain.types import (
@@ -62,6 +63,9 @@ from calcbook.quantities import read_any
 Array = np.ndarray
 Key = tuple[str, str, str]
 Margins = Callable[[], list[Array]]
+# Finds, from inputs that leave nothing open, solutions by condition and the place of each sample among the cases, what
+# is found from a solved calculation.
+Later = Callable[[Mapping[str, Array], Mapping[str, Solution], Array], Mapping[str, ResultFigures]]
 # A sample at which there is no verdict: the limit is not there, cannot be evaluated, or the result is not known.
 NO_VERDICT = -1
 MET_WORDS = ("met", "not met")
@@ -157,6 +161,7 @@ def evaluate_samples(
     directions: Sequence[float] = (),
     start: Array | None = None,
     ends_close: bool = False,
+    later: Later | None = None,
 ) -> Samples:
     """Solve samples (inputs by id, one row or one figure for all) clean and in service, with every verdict.
 
@@ -164,7 +169,7 @@ def evaluate_samples(
     ``phases`` are the phases of streams by case, ``directions`` the signs of the heat flow: a sample in which one
     is another gets no answer. ``start`` are unknowns of like samples to begin from. The calculation's own cases must
     have solved without a fault. Where their circuits close at both ends of a duty (``ends_close``), a sample whose
-    circuit does not has no answer.
+    circuit does not has no answer. ``later`` adds results that are found from a solved calculation.
     """
     size = max(np.size(value) for value in inputs.values())
     belongs = case_of if case_of is not None else np.zeros(size, dtype=int)
@@ -183,7 +188,7 @@ def evaluate_samples(
             inputs = {
                 name: value[samples.solved] if np.ndim(value) else value for name, value in inputs.items()
             }
-        _solve(chain, inputs, cases, belongs[samples.solved], samples, start, ends_close)
+        _solve(chain, inputs, cases, belongs[samples.solved], samples, start, ends_close, later)
     if directions and "heat_flow_service" in samples.results:
         flow = np.sign(samples.results["heat_flow_service"].values)
         samples.mark(flow != np.array(directions)[belongs[samples.solved]], TURNED, samples.solved)
@@ -205,6 +210,7 @@ def _solve(
     samples: Samples,
     start: Array | None,
     ends_close: bool,
+    later: Later | None,
 ) -> None:
     if start is not None:
         start = np.concatenate(list(start[:, :, samples.solved]), axis=1)
@@ -217,8 +223,10 @@ def _solve(
             samples.unknowns[place][:, samples.solved] = solutions[condition].unknowns
     ends = end_states(chain, inputs, solutions, thorough=False)
     samples.results = result_figures(chain, solutions) | surfaces_at_ends(ends)
-    if any(name.startswith(LARGEST_ALLOWANCE) for name in _results_asked(chain)):
+    if any(name.startswith(LARGEST_ALLOWANCE) for name in results_asked(chain)):
         samples.results |= allowance_figures(chain, inputs, solutions[SERVICE], thorough=False)
+    if later is not None:
+        samples.results |= later(inputs, solutions, case_of)
     verdicts = [
         *_criteria(chain, solutions, samples.results),
         *_Limits(chain, both, cases, case_of, ends).verdicts(),
@@ -249,7 +257,7 @@ def _solve(
         samples.mark(~state.solution.converged, why, samples.solved)
 
 
-def _results_asked(chain: Chain) -> Iterator[str]:
+def results_asked(chain: Chain) -> Iterator[str]:
     """The results that the criteria and the sweep of the file name."""
     yield from (criterion.result for criterion in chain.calculation.acceptance)
     sweep = chain.calculation.sweep
@@ -264,7 +272,9 @@ def _criteria(
 ) -> Iterator[Verdicts]:
     for item in criterion_figures(chain, solutions, results):
         codes = np.where(item.met, 0, 1)
-        codes = np.where(np.isfinite(item.margin), codes, NO_VERDICT)
+        # A state of day one that is not there does not meet what is asked of it.
+        absent = 1 if item.criterion.result in OF_DAY_ONE else NO_VERDICT
+        codes = np.where(np.isfinite(item.margin), codes, absent)
         yield Verdicts(
             CRITERION, f"criterion {item.number}", "", MET_WORDS, codes, _fixed_margins(item.margin)
         )

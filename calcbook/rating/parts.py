@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import replace
 
 import numpy as np
@@ -11,10 +11,11 @@ from calcbook.chain.along import OF_PARTS, U_SPREAD
 from calcbook.chain.outcome import Result, Solved
 from calcbook.chain.rating_outcome import PartRow, Parts
 from calcbook.chain.solve import Solution, solve
-from calcbook.chain.types import CLEAN, CONDITIONS, SERVICE, OpenItem
+from calcbook.chain.types import CLEAN, CONDITIONS, SERVICE, Chain, OpenItem
 from calcbook.chain.variants import with_figures
 from calcbook.formulas import number_text
 from calcbook.library import vocabulary
+from calcbook.quantities import QuantityKind
 
 Array = np.ndarray
 
@@ -24,18 +25,54 @@ def parts(solved: Solved) -> Parts | None:
 
     Every part carries the same heat, so that both streams change their temperature by equal steps.
     """
-    duty, base = solved.chain.calculation.duty, solved.base.solutions[SERVICE]
+    duty = solved.chain.calculation.duty
     if duty is None or duty.parts == 1:
         return None
-    ends = {name: _ends(solved, name, duty.parts) for name in duty.sides}
-    heat = solved.chain.results["duty"]
-    figures = {heat: np.full(duty.parts, base.number(heat) / duty.parts)}
-    for name, (inlets, outlets) in ends.items():
-        figures |= _side(solved, name, inlets, outlets)
     inputs = {name: np.asarray(value) for name, value in solved.base.inputs.items()}
-    chain, given = with_figures(solved.chain, inputs, figures)
+    chain, given, ends = _cut(solved.chain, inputs, solved.base.solutions[SERVICE])
     solutions = {condition: solve(chain, given, condition) for condition in CONDITIONS}
     return _laid_out(solved, solutions, ends, duty.parts)
+
+
+def areas_of_parts(
+    chain: Chain, inputs: Mapping[str, Array], service: Solution, thorough: bool = True
+) -> dict[str, Array]:
+    """The area summed over the parts, by condition, for every sample of a solution in one row.
+
+    ``inputs`` leave nothing open. Not a number where the circuit of a part does not close.
+    """
+    duty, size = chain.calculation.duty, service.converged.size
+    assert duty is not None
+    cut, given, _ = _cut(chain, inputs, service)
+    area = chain.results["area required"]
+    found = {}
+    for condition in CONDITIONS:
+        solution = solve(cut, given, condition, keep=(area,), thorough=thorough)
+        rows = np.where(solution.converged, solution.figure(area), np.nan)
+        found[condition] = rows.reshape(duty.parts, size).sum(axis=0)
+    return found
+
+
+def _cut(
+    whole: Chain, inputs: Mapping[str, Array], service: Solution
+) -> tuple[Chain, dict[str, Array], dict[str, tuple[Array, Array]]]:
+    """A chain and its inputs in which every sample stands once for each part; and inlets and outlets of both sides."""
+    duty, size = whole.calculation.duty, service.converged.size
+    assert duty is not None
+    ends = {name: _ends(whole, service, name, duty.parts) for name in duty.sides}
+    heat = whole.results["duty"]
+    figures = {heat: np.tile(_row(service, heat) / duty.parts, duty.parts)}
+    for name, (inlets, outlets) in ends.items():
+        figures |= _side(whole, name, inlets, outlets)
+    given = {
+        name: np.tile(value, duty.parts) if size > 1 and np.ndim(value) else value
+        for name, value in inputs.items()
+    }
+    return *with_figures(whole, given, figures), ends
+
+
+def _row(solution: Solution, name: str) -> Array:
+    return np.broadcast_to(solution.figure(name).ravel(), (solution.converged.size,))
 
 
 def with_parts(solved: Solved, along: Parts) -> Solved:
@@ -46,22 +83,32 @@ def with_parts(solved: Solved, along: Parts) -> Solved:
     """
     base = solved.base
     installed, single = base.results["area_installed"].value, base.results["area_margin"].value
-    margin = installed / along.area[SERVICE] - 1.0
-    area, ratio = vocabulary()["area"], vocabulary()["ratio"]
-    summed = "summed over the parts of the duty"
-    values = (
-        (along.area[SERVICE], area, f"area that the duty needs in service, {summed}"),
-        (along.area[CLEAN], area, f"area that the duty needs clean, {summed}"),
-        (margin, ratio, f"margin of area over the duty in service, its area {summed}"),
-    )
+    areas = {condition: np.asarray(area) for condition, area in along.area.items()}
     results = {
-        name: Result(name, value, kind, title)
-        for name, (value, kind, title) in zip(OF_PARTS, values, strict=True)
+        name: Result(name, float(value), kind, title)
+        for name, value, kind, title in results_of_parts(areas, np.asarray(installed))
     }
+    margin = results[OF_PARTS[2]].value
     items = list(base.open_items)
     if along.spread > U_SPREAD or (margin < 0.0) != (single < 0.0):
         items.append(OpenItem("duty / parts", "check", _misled(along, margin, single)))
     return solved.with_base(replace(base, results={**base.results, **results}, open_items=tuple(items)))
+
+
+def results_of_parts(
+    areas: Mapping[str, Array], installed: Array
+) -> Iterator[tuple[str, Array, QuantityKind, str]]:
+    """Name, values, kind and title of every result that the areas summed over the parts give."""
+    area, ratio = vocabulary()["area"], vocabulary()["ratio"]
+    summed = "summed over the parts of the duty"
+    margin = installed / areas[SERVICE] - 1.0
+    rows = (
+        (areas[SERVICE], area, f"area that the duty needs in service, {summed}"),
+        (areas[CLEAN], area, f"area that the duty needs clean, {summed}"),
+        (margin, ratio, f"margin of area over the duty in service, its area {summed}"),
+    )
+    for name, row in zip(OF_PARTS, rows, strict=True):
+        yield name, *row
 
 
 def _misled(along: Parts, margin: float, single: float) -> str:
@@ -76,25 +123,26 @@ def _percent(ratio: float) -> str:
     return f"{number_text(100.0 * ratio, 3)} %"
 
 
-def _ends(solved: Solved, name: str, count: int) -> tuple[Array, Array]:
-    """Inlet and outlet temperatures of a side in every part, numbered from the hot inlet."""
-    number = solved.base.solutions[SERVICE].number
-    inlet, outlet = (number(solved.chain.results[f"T {name} {end}"]) for end in ("inlet", "outlet"))
-    borders = inlet + (outlet - inlet) * np.linspace(0.0, 1.0, count + 1)
-    duty = solved.chain.calculation.duty
+def _ends(whole: Chain, service: Solution, name: str, count: int) -> tuple[Array, Array]:
+    """Inlet and outlet temperatures of a side in every part, numbered from the hot inlet; part after part, the samples
+    of each in one row."""
+    inlet, outlet = (_row(service, whole.results[f"T {name} {end}"]) for end in ("inlet", "outlet"))
+    borders = inlet + (outlet - inlet) * np.linspace(0.0, 1.0, count + 1)[:, np.newaxis]
+    duty = whole.calculation.duty
     if name == "cold" and duty is not None and duty.arrangement == "counterflow":
-        return borders[:-1][::-1], borders[1:][::-1]
-    return borders[:-1], borders[1:]
+        borders = borders[::-1]
+        return borders[1:].ravel(), borders[:-1].ravel()
+    return borders[:-1].ravel(), borders[1:].ravel()
 
 
-def _side(solved: Solved, name: str, inlets: Array, outlets: Array) -> dict[str, Array]:
+def _side(whole: Chain, name: str, inlets: Array, outlets: Array) -> dict[str, Array]:
     """The figures of a side in the parts: its ends, and its bulk where the file states that apart."""
-    table, duty = solved.chain.results, solved.chain.calculation.duty
+    table, duty = whole.results, whole.calculation.duty
     assert duty is not None
     if f"T {name} mean" not in table:
         return {}
     figures = {table[f"T {name} inlet"]: inlets, table[f"T {name} outlet"]: outlets}
-    bulk = solved.chain.streams[duty.sides[name].stream].temperature
+    bulk = whole.streams[duty.sides[name].stream].temperature
     return figures if bulk == table[f"T {name} mean"] else {**figures, bulk: (inlets + outlets) / 2.0}
 
 

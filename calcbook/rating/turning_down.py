@@ -28,20 +28,16 @@ from calcbook.chain.rating_outcome import (
     state_in,
 )
 from calcbook.chain.solve import solve
-from calcbook.chain.types import CLEAN, SERVICE, Chain, StreamState
+from calcbook.chain.types import CLEAN, SERVICE, Chain
 from calcbook.chain.variants import with_figures
-from calcbook.formulas import number_text
-from calcbook.properties import PropertyFault
 from calcbook.rating.opened import open_chain
+from calcbook.rating.saturation_way import NoState, Way, must_spare, percent, spare
 from calcbook.rating.unit_states import MARGIN, NOTHING, Judged, judged, pressure_of, unit_state
 
 Array = np.ndarray
 # A flow is looked for down to this part of the stated one.
 SMALLEST_PART = 0.02
 POINTS, ROUNDS = 41, 6
-# A saturation temperature is looked for in so many steps up to this part of its way to the other stream, where the need
-# for area has no end, and is known this well, in K. Where the circuit ends first, that place is halved so often.
-STEPS, LARGEST_PART, KNOWN, HALVINGS = 12, 0.999, 1e-9, 20
 # Common practice: what a control takes where the file does not say. The pressure of steam, and that of a refrigerant,
 # which is called by its number (ISO 817) or is one of these; else the flow of the stream that serves the other.
 USUALLY_THROTTLED = {"hot": re.compile("Water"), "cold": re.compile(r"RC?\d.*|Ammonia|CarbonDioxide")}
@@ -56,21 +52,17 @@ class TurnedDown(NamedTuple):
     throttle: Throttle
 
 
-class _NoState(Exception):
-    """Why there is no turned-down state, in words."""
-
-
 def turned_down(chain: Chain, case: CaseOutcome) -> TurnedDown:
     """The clean unit with its control throttled until it gives the duty; or why there is none."""
     duty = chain.calculation.duty
     assert duty is not None
-    side = throttled_side(chain)
-    throttle = Throttle(side, _moved(chain, duty.sides[side]), bool(duty.throttled))
+    throttle = throttle_of(chain)
+    side = throttle.side
     if "duty" not in chain.results:
         return TurnedDown(None, "the duty is what the unit reaches, and none is stated", NOTHING, throttle)
     try:
         opened, figures = (_flow if throttle.what == FLOW else _saturation)(chain, case, duty, throttle)
-    except _NoState as reason:
+    except NoState as reason:
         return TurnedDown(None, str(reason), NOTHING, throttle)
     one, given = with_figures(opened, opened.case_inputs(case.name), figures)
     given = completed(one, given)
@@ -85,6 +77,14 @@ def turned_down(chain: Chain, case: CaseOutcome) -> TurnedDown:
         stated = pressure_of(stream, case.solutions[SERVICE])
         checks += throttled_vapour(chain, stream, stated, state.sides[side].pressure, label)
     return TurnedDown(state, "", left._replace(checks=tuple(checks)), throttle)
+
+
+def throttle_of(chain: Chain) -> Throttle:
+    """What the control of a unit with a duty moves."""
+    duty = chain.calculation.duty
+    assert duty is not None
+    side = throttled_side(chain)
+    return Throttle(side, _moved(chain, duty.sides[side]), bool(duty.throttled))
 
 
 def throttled_side(chain: Chain) -> str:
@@ -109,33 +109,10 @@ def _moved(chain: Chain, side: DutySide) -> str:
 
 
 def _spare(chain: Chain, before: Chain, case: CaseOutcome) -> Callable[[Mapping[str, Array]], Array]:
-    """What the clean unit has to spare at several figures, NaN where it has no answer: the margin of area over a duty
-    that follows from the ends, else what it reaches over the stated duty."""
-    has_duty = "duty" in chain.results
-    wanted = chain.results["area margin" if has_duty else "heat reached"]
-    stated = case.solutions[SERVICE].number(before.results["duty"])
+    """What the clean unit has to spare at several figures of a case."""
+    stated = case.solutions[SERVICE].figure(before.results["duty"])
     inputs = chain.case_inputs(case.name)
-
-    def spare(figures: Mapping[str, Array]) -> Array:
-        one, given = with_figures(chain, inputs, figures)
-        solution = solve(one, given, CLEAN, keep=(wanted,), thorough=False)
-        (shape,) = {np.shape(figure) for figure in figures.values()}
-        found = np.broadcast_to(np.asarray(solution.values[wanted], dtype=float), shape)
-        return found if has_duty else found / stated - 1.0
-
-    return spare
-
-
-def _must_spare(spare: float, where: str) -> None:
-    """Refuse to look for a state where the clean unit has nothing to spare as it stands."""
-    if math.isnan(spare):
-        raise _NoState(f"the circuit of the clean unit does not close at the duty and {where}")
-    if spare <= 0.0:
-        raise _NoState(f"the clean unit does not carry the duty: it is {_percent(-spare)} short")
-
-
-def _percent(share: float) -> str:
-    return f"{number_text(100.0 * share, 3)} %"
+    return lambda figures: spare(chain, inputs, figures, stated)
 
 
 # --- a flow -------------------------------------------------------------------------------------------
@@ -149,28 +126,28 @@ def _flow(before: Chain, case: CaseOutcome, duty: Duty, throttle: Throttle) -> t
     side = throttle.side
     flow = before.streams[duty.sides[side].stream].mass_flow
     if f"C {side}" not in before.results or not flow:
-        raise _NoState(f"the {side} stream has no mass flow that could be turned down")
+        raise NoState(f"the {side} stream has no mass flow that could be turned down")
     fixed = _stated_without_scale(before, duty.sides[side].stream)
     if fixed:
-        raise _NoState(f"the coefficient of {fixed} is stated, and nothing says how it follows the flow")
+        raise NoState(f"the coefficient of {fixed} is stated, and nothing says how it follows the flow")
     chain = open_chain(before, case, side, condition=CLEAN)
     if chain is None:
-        raise _NoState(f"the duty does not follow from the {throttle.other} stream alone")
-    spare = _spare(chain, before, case)
+        raise NoState(f"the duty does not follow from the {throttle.other} stream alone")
+    spare_at = _spare(chain, before, case)
     stated = case.solutions[SERVICE].number(flow)
     low, high = SMALLEST_PART * stated, stated
-    _must_spare(float(spare({flow: np.array([high])})[0]), f"the stated {side} flow")
+    must_spare(float(spare_at({flow: np.array([high])})[0]), f"the stated {side} flow")
     for _ in range(ROUNDS):
         points = np.linspace(low, high, POINTS)
-        found = spare({flow: points})
+        found = spare_at({flow: points})
         if found[0] > 0.0 and not (found <= 0.0).any():
-            raise _NoState(
-                f"the clean unit carries the duty at {_percent(SMALLEST_PART)} of the {side} flow still"
+            raise NoState(
+                f"the clean unit carries the duty at {percent(SMALLEST_PART)} of the {side} flow still"
             )
         last, first = _narrowed(found)
         low, high = points[last], points[first]
     if math.isnan(found[last]):
-        raise _NoState(
+        raise NoState(
             f"the clean unit carries the duty down to a {side} flow at which its circuit does not close"
         )
     return chain, {flow: np.asarray(high)}
@@ -203,59 +180,15 @@ def _stated_without_scale(chain: Chain, stream: str) -> str:
 def _saturation(
     before: Chain, case: CaseOutcome, duty: Duty, throttle: Throttle
 ) -> tuple[Chain, dict[str, Array]]:
-    """The saturation temperature of a side, or the pressure that it follows from, at which the clean unit has nothing
-    to spare: between the stated one and the outlet of the other stream."""
-    from scipy.optimize import brentq
-
-    side = throttle.side
+    """The figure that a side has its saturation temperature from, where the clean unit has nothing to spare."""
     chain = open_chain(before, case)
     if chain is None:
-        raise _NoState(f"the duty does not follow from the {throttle.other} stream alone")
-    stream, spare = chain.streams[duty.sides[side].stream], _spare(chain, before, case)
-    nominal = case.solutions[SERVICE]
-    stated = nominal.number(stream.temperature)
-    way = nominal.number(chain.results[f"T {throttle.other} outlet"]) - stated
-
-    def at(part: float) -> float:
-        try:
-            return float(spare(_at_saturation(stream, stated + part * way)))
-        except PropertyFault:
-            return math.nan
-
-    _must_spare(at(0.0), f"the stated {throttle.what}")
-    low, high = _bracket(at, "down" if side == "hot" else "up", throttle.what)
-    part = brentq(at, low, high, xtol=KNOWN / abs(way))
-    return chain, _at_saturation(stream, stated + part * way)
-
-
-def _bracket(spare: Callable[[float], float], way: str, what: str) -> tuple[float, float]:
-    """Two parts of the way between which the clean unit ceases to have something to spare."""
-    low, high = 0.0, math.nan
-    for part in np.linspace(0.0, LARGEST_PART, STEPS + 1)[1:].tolist():
-        found = spare(part)
-        if found > 0.0:
-            low = part
-            continue
-        if found <= 0.0:
-            return low, part
-        high = part
-        break
-    if math.isnan(high):
-        raise _NoState(
-            f"the clean unit carries the duty with {_percent(1.0 - LARGEST_PART)} of the temperature difference still"
-        )
-    for _ in range(HALVINGS):
-        part = 0.5 * (low + high)
-        found = spare(part)
-        if found <= 0.0:
-            return low, part
-        low, high = (part, high) if found > 0.0 else (low, part)
-    raise _NoState(f"the clean unit carries the duty {way} to a {what} at which its circuit does not close")
-
-
-def _at_saturation(stream: StreamState, temperature: float) -> dict[str, Array]:
-    """The figure from which a saturated stream has a temperature. Raises ``PropertyFault`` where it has none."""
-    if not stream.pressure:
-        return {stream.temperature: np.asarray(temperature)}
-    fluid = stream.fluid.state(None, None, stream.phase)
-    return {stream.pressure: np.asarray(fluid.saturation_pressure(temperature))}
+        raise NoState(f"the duty does not follow from the {throttle.other} stream alone")
+    way = Way.of(chain, throttle, chain.case_inputs(case.name), case.solutions[SERVICE])
+    found = way.found()
+    place = float(found.places[0])
+    if math.isnan(place):
+        raise NoState(found.reason(0, throttle))
+    return chain, {
+        name: value.reshape(()) for name, value in way.at(np.array([place]), np.array([0])).items()
+    }

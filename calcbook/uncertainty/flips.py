@@ -19,6 +19,7 @@ from decimal import ROUND_CEILING, ROUND_FLOOR, Context, Decimal
 import numpy as np
 
 from calcbook.calcfile.calculation import Given
+from calcbook.chain.analysis import is_found_later
 from calcbook.chain.ends import OPEN_END
 from calcbook.chain.flips_outcome import CONTROLLING, CRITERION, LIMIT, METHOD, Flip, Flips, Searched
 from calcbook.chain.outcome import CaseOutcome, Solved
@@ -31,9 +32,11 @@ from calcbook.chain.samples import (
     Verdicts,
     evaluate_samples,
     phases_of,
+    results_asked,
 )
 from calcbook.chain.types import Chain, Input
 from calcbook.quantities import in_unit, read_tolerance, si_value
+from calcbook.rating.at_samples import AtSamples
 from calcbook.uncertainty.lines import Reach, changes_fluid_state, reach
 
 Array = np.ndarray
@@ -216,6 +219,7 @@ class _Search:
             if "heat_flow_service" in case.results
         ]
         self.ends_close = not any(check.id.startswith(OPEN_END) for case in cases for check in case.checks)
+        self.later = AtSamples(solved, results_asked(solved.chain))
         self.table = _Table()
         self.lines: list[_Line] = []
         self.best: dict[Group, _Bracket] = {}
@@ -234,7 +238,12 @@ class _Search:
         found.sort(
             key=lambda flip: (order[flip.kind], not flip.is_within_tolerance, float(f"{flip.steps:.6g}"))
         )
-        return Flips(tuple(found), tuple(self._searched()), unsettled)
+        left_out = tuple(
+            criterion.text
+            for criterion in self.chain.calculation.acceptance
+            if is_found_later(criterion.result) and criterion.result not in self.later.names
+        )
+        return Flips(tuple(found), tuple(self._searched()), unsettled, left_out)
 
     # -- samples ------------------------------------------------------------------------------------
 
@@ -298,7 +307,15 @@ class _Search:
             inputs = {name: np.full(len(case_of), value) for name, value in inputs.items()}
         near = self._near(part, ahead)
         samples = evaluate_samples(
-            self.chain, inputs, self.names, case_of, self.phases, self.directions, near, self.ends_close
+            self.chain,
+            inputs,
+            self.names,
+            case_of,
+            self.phases,
+            self.directions,
+            near,
+            self.ends_close,
+            self.later if self.later.names else None,
         )
         return self.table.takes(samples) + ahead
 

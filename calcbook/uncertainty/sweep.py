@@ -9,11 +9,14 @@ from calcbook.chain.analysis import is_found_later
 from calcbook.chain.figures import ResultFigures
 from calcbook.chain.flips_outcome import LIMIT
 from calcbook.chain.outcome import Result, Solved
+from calcbook.chain.rating_outcome import OF_DAY_ONE
 from calcbook.chain.samples import BROKEN, OPEN, Samples, evaluate_samples, phases_of
 from calcbook.chain.sweep_outcome import Axis, Sweep, SweptResult
 from calcbook.chain.types import Chain, Input
 from calcbook.faults import Collector, Place, nearest_names, shown
+from calcbook.library import vocabulary
 from calcbook.quantities import Quantity, QuantityFault, as_kind, in_unit
+from calcbook.rating.at_samples import AtSamples, names_at_samples
 
 Array = np.ndarray
 ALWAYS = ("U_service", "U_clean")
@@ -57,10 +60,16 @@ def sweep_of(solved: Solved, axes: tuple[Axis, ...], collector: Collector) -> Sw
     grids = np.meshgrid(*(np.array(axis.figures) for axis in axes), indexing="ij")
     for axis, grid in zip(axes, grids, strict=True):
         inputs[axis.input.id] = np.ascontiguousarray(grid.ravel())
-    samples = evaluate_samples(solved.chain, inputs, phases=phases_of(solved.chain, (solved.base,)))
+    later = AtSamples(solved, names)
+    samples = evaluate_samples(
+        solved.chain,
+        inputs,
+        phases=phases_of(solved.chain, (solved.base,)),
+        later=later if later.names else None,
+    )
     return Sweep(
         axes,
-        tuple(_result(solved, solved.base.results[name], samples) for name in names),
+        tuple(_result(solved, _named(solved, name), samples) for name in names),
         tuple(samples.reasons[place] for place in samples.missing.tolist()),
         _outside(samples),
     )
@@ -69,7 +78,9 @@ def sweep_of(solved: Solved, axes: tuple[Axis, ...], collector: Collector) -> Sw
 def swept_names(solved: Solved, collector: Collector) -> list[str]:
     """The results asked for, else U and those that the acceptance names. Code: result-unknown."""
     text = solved.chain.calculation.sweep
-    known = [name for name in solved.base.results if not is_found_later(name)]
+    also = names_at_samples(solved)
+    known = [name for name in solved.base.results if not is_found_later(name) or name in also]
+    known += sorted(also - set(known))
     if text is None or not text.of:
         named = [criterion.result for criterion in solved.chain.calculation.acceptance]
         return [name for name in dict.fromkeys((*ALWAYS, *named)) if name in known]
@@ -86,6 +97,15 @@ def swept_names(solved: Solved, collector: Collector) -> list[str]:
                 nearest=nearest_names(name, known),
             )
     return [name for name, _ in text.of if name in known]
+
+
+def _named(solved: Solved, name: str) -> Result:
+    """A result of the base case; a state of day one that it does not have may be there at other samples."""
+    known = solved.base.results.get(name)
+    if known is not None:
+        return known
+    kind, title = OF_DAY_ONE[name]
+    return Result(name, np.nan, vocabulary()[kind], title)
 
 
 def _result(solved: Solved, result: Result, samples: Samples) -> SweptResult:

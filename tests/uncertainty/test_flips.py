@@ -11,6 +11,8 @@ import pytest
 from small_flips import flips_of, solved_of
 
 from calcbook.chain import analysis
+from calcbook.chain.analysis import is_found_later
+from calcbook.chain.build import build
 from calcbook.chain.flips_outcome import CONTROLLING, CRITERION, LIMIT, METHOD, Flip, Flips, Searched
 from calcbook.chain.outcome import CaseOutcome
 from calcbook.chain.pressure import drops, law_of
@@ -20,6 +22,7 @@ from calcbook.faults import Collector, Place
 from calcbook.interface import solve_file
 from calcbook.library import vocabulary
 from calcbook.quantities import read_any
+from calcbook.rating.rate import rated
 from calcbook.uncertainty import flips
 from calcbook.uncertainty.flips import distances_to_flip
 from calcbook.uncertainty.lines import reach
@@ -418,6 +421,33 @@ def alone(chain: Chain, flip: Flip, printed: float) -> tuple[CaseOutcome | None,
     return (solved.base if solved is not None else None), collector
 
 
+def rated_alone(chain: Chain, flip: Flip, printed: float) -> CaseOutcome:
+    """The outcome with the printed figure, the case a file of its own, with all that is found from a solved one."""
+    calculation = chain.calculation
+    symbol, restated = flip.input.symbol, calculation.cases.get(flip.case, {})
+    given, text = restated.get(symbol) or calculation.givens[symbol], f"{printed!r} {flip.unit}".strip()
+    changed = given._replace(value=replace(given.value, text=text, quantity=read_any(text)))
+    collector = Collector()
+    givens = {**calculation.givens, **restated, symbol: changed}
+    probe = replace(calculation, givens=givens, cases={})
+    built = build(probe, chain.library, collector)
+    solved = analysis.analyse(built, collector) if built is not None else None
+    assert solved is not None, list(collector)
+    return analysis.judged_later(rated(solved), collector).base
+
+
+def is_later(chain: Chain, flip: Flip) -> bool:
+    """Whether a flip is that of a criterion on what is found from a solved calculation."""
+    if flip.kind != CRITERION:
+        return False
+    return is_found_later(chain.calculation.criterion(flip.id).result)
+
+
+def check_later_flip(chain: Chain, flip: Flip) -> None:
+    for printed, word in ((flip.printed, flip.becomes), (flip.printed_inside, flip.was)):
+        assert verdicts(chain, rated_alone(chain, flip, printed), flip) == [word]
+
+
 def verdicts(chain: Chain, case: CaseOutcome, flip: Flip) -> list[str]:
     """What a record says of the verdict that a flip is about."""
     if flip.kind == CRITERION:
@@ -489,7 +519,7 @@ def test_every_line_flips_where_it_says_and_not_just_inside(path: Path) -> None:
     wrong = []
     for flip in solved.flips.flips:
         try:
-            check_flip(solved.chain, flip)
+            (check_later_flip if is_later(solved.chain, flip) else check_flip)(solved.chain, flip)
         except AssertionError as error:
             wrong.append(
                 (flip.kind, flip.id, flip.condition, flip.input.symbol, flip.printed, str(error)[:300])

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import math
 
-from calcbook.chain.analysis import is_found_later
 from calcbook.chain.flips_outcome import CONTROLLING, CRITERION, LIMIT, METHOD, Flip, Flips, Searched
 from calcbook.formulas.names import written_name
 from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Table
@@ -61,9 +60,11 @@ def _alone(page: Page) -> list[Block]:
         notes.append(
             "A criterion that asks for a probability is searched by its verdict at the stated values."
         )
-    later = [item.text for item in page.calculation.acceptance if is_found_later(item.result)]
-    if later:
-        notes.append(f"What is found once from the solved calculation is not searched: {'; '.join(later)}.")
+    left_out = page.solved.flips.left_out if page.solved.flips is not None else ()
+    if left_out:
+        notes.append(
+            f"What is found once from the solved calculation is not searched: {'; '.join(left_out)}."
+        )
     geometry = page.calculation.geometry
     if geometry is not None and {"inside diameter", "outside diameter"} <= set(geometry.dimensions):
         notes.append("A diameter changed alone changes the thickness of the wall with it.")

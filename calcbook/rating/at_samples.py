@@ -1,0 +1,89 @@
+"""What the rating finds from a solved calculation, found again at many samples of it.
+
+The areas summed over the parts of the duty, and the saturation that the control of the clean unit moves. A flow that
+it moves, the time until the duty is lost and the cleaning interval are found once, for the record alone.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+
+import numpy as np
+
+from calcbook.chain.along import OF_PARTS
+from calcbook.chain.figures import ResultFigures
+from calcbook.chain.outcome import CaseOutcome, Solved
+from calcbook.chain.rating_outcome import FLOW, OF_DAY_ONE, PRESSURE, PRESSURE_RESULT, TEMPERATURE_RESULT
+from calcbook.chain.solve import Solution
+from calcbook.chain.specified import SPECIFIED_FIGURES
+from calcbook.chain.types import SERVICE, Chain
+from calcbook.library import vocabulary
+from calcbook.rating.opened import open_chain
+from calcbook.rating.parts import areas_of_parts, results_of_parts
+from calcbook.rating.saturation_way import Way
+from calcbook.rating.turning_down import throttle_of
+
+Array = np.ndarray
+
+
+def names_at_samples(solved: Solved) -> frozenset[str]:
+    """The results found from a solved calculation that can be found at samples of it too."""
+    chain = solved.chain
+    if chain.calculation.duty is None or "duty" not in chain.results:
+        return frozenset()
+    parts = OF_PARTS if chain.calculation.duty.parts > 1 else ()
+    return frozenset((*parts, *_moved(chain)))
+
+
+def _moved(chain: Chain) -> tuple[str, ...]:
+    """The names of what the control moves where that is a saturation, and nothing of its way was found for a case."""
+    duty = chain.calculation.duty
+    assert duty is not None
+    is_found = any(side.open_end == "inlet" for side in duty.sides.values()) or any(
+        item.id in SPECIFIED_FIGURES for item in chain.open_figures
+    )
+    what = throttle_of(chain).what
+    if what == FLOW or is_found:
+        return ()
+    return (PRESSURE_RESULT, TEMPERATURE_RESULT) if what == PRESSURE else (TEMPERATURE_RESULT,)
+
+
+class AtSamples:
+    """What is ``asked`` of a solved calculation, at samples that are given with their solutions."""
+
+    def __init__(self, solved: Solved, asked: Iterable[str]):
+        self.chain: Chain = solved.chain
+        self.base: CaseOutcome = solved.base
+        self.names = names_at_samples(solved) & frozenset(asked)
+
+    def __call__(
+        self, inputs: Mapping[str, Array], solutions: Mapping[str, Solution], case_of: Array
+    ) -> dict[str, ResultFigures]:
+        """Every result at every sample, NaN where there is none; of parts in the base case (place 0) alone.
+
+        ``inputs`` leave nothing open.
+        """
+        found: dict[str, ResultFigures] = {}
+        service = solutions[SERVICE]
+        if self.names & set(OF_PARTS):
+            areas = areas_of_parts(self.chain, inputs, service, thorough=False)
+            installed = service.figure(self.chain.results["area installed"])
+            for name, values, kind, title in results_of_parts(areas, installed):
+                found[name] = ResultFigures(np.where(case_of == 0, values, np.nan), kind, title)
+        if self.names & set(OF_DAY_ONE):
+            found |= self._control(inputs, service)
+        return {name: figures for name, figures in found.items() if name in self.names}
+
+    def _control(self, inputs: Mapping[str, Array], service: Solution) -> dict[str, ResultFigures]:
+        throttle, opened = throttle_of(self.chain), open_chain(self.chain, self.base)
+        assert opened is not None, "the calculation itself was built from the same file"
+        given = {name: value for name, value in inputs.items() if name in self.chain.inputs}
+        way = Way.of(opened, throttle, given, service)
+        places, everyone = way.found().places, np.arange(service.converged.size)
+        values = {TEMPERATURE_RESULT: way.stated + places * way.length}
+        if throttle.what == PRESSURE:
+            (values[PRESSURE_RESULT],) = way.at(places, everyone).values()
+        return {
+            name: ResultFigures(figures, vocabulary()[OF_DAY_ONE[name][0]], OF_DAY_ONE[name][1])
+            for name, figures in values.items()
+        }

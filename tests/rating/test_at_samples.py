@@ -1,0 +1,121 @@
+"""What the rating finds from a solved calculation, at many samples: each is held against a file of its own."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import numpy as np
+import pytest
+from rated_units import COOLER, EVAPORATOR, HEATER, solved
+
+from calcbook.chain.samples import evaluate_samples
+from calcbook.faults import Faults
+from calcbook.interface import record_text, solve_file
+from calcbook.rating.at_samples import AtSamples, names_at_samples
+
+PARTED = COOLER.replace("duty:\n", "duty:\n  parts: 4\n")
+OF_PARTS = {"area_service of parts", "area_clean of parts", "area_margin of parts"}
+CONTROL = {"pressure_turned_down", "T_turned_down"}
+
+
+def recorded(folder: Path, text: str):
+    path = folder / "td-1.yaml"
+    path.write_text(text, encoding="utf-8")
+    return solve_file(path)
+
+
+@pytest.mark.parametrize("text", [HEATER, EVAPORATOR])
+def test_a_sweep_of_the_control_is_that_of_files_of_their_own(tmp_path: Path, text: str) -> None:
+    sweep = (
+        "sweep:\n  p_st: {from: 2 bara, to: 3 bara, steps: 3}\n  of: [pressure_turned_down, T_turned_down]\n"
+    )
+    answer = recorded(tmp_path, text + sweep)
+    assert answer.sweep is not None
+    found = {result.name: result.values for result in answer.sweep.results}
+    assert set(found) == CONTROL
+    for place, pressure in enumerate(("2 bara", "2.5 bara", "3 bara")):
+        alone = solved(tmp_path, text.replace("2.6 bara", pressure)).base.results
+        for name, values in found.items():
+            expected = alone[name].value if name in alone else float("nan")
+            assert values[place] == pytest.approx(expected, rel=1e-9, nan_ok=True), (name, pressure)
+    # More steam pressure changes nothing of what the clean unit needs.
+    assert found["pressure_turned_down"][1] == pytest.approx(found["pressure_turned_down"][2], rel=1e-9)
+
+
+def test_a_sweep_of_the_summed_margin_is_that_of_files_of_their_own(tmp_path: Path) -> None:
+    sweep = "sweep:\n  m_cold: {from: 20 kg/s, to: 24 kg/s, steps: 3}\n  of: [area_margin of parts]\n"
+    answer = recorded(tmp_path, PARTED + sweep)
+    assert answer.sweep is not None
+    (found,) = answer.sweep.results
+    stated = next(line for line in PARTED.splitlines() if line.strip().startswith("m_cold:"))
+    figure = stated.split("value: ")[1].split(",")[0]
+    for place, flow in enumerate(("20 kg/s", "22 kg/s", "24 kg/s")):
+        alone = solved(tmp_path, PARTED.replace(stated, stated.replace(figure, flow))).base.results
+        assert found.values[place] == pytest.approx(alone["area_margin of parts"].value, rel=1e-9)
+
+
+def test_the_summed_margin_flips_where_a_file_with_that_figure_has_none(tmp_path: Path) -> None:
+    criterion = "acceptance:\n  - {that: area_margin of parts >= 0, source: sheet}\n"
+    answer = recorded(tmp_path, PARTED + criterion)
+    assert answer.flips is not None and not answer.flips.left_out
+    flip = next(one for one in answer.flips.of_kind("criterion") if one.input.symbol == "L")
+    stated = next(line for line in PARTED.splitlines() if line.strip().startswith("L:"))
+    figure = stated.split("value: ")[1].split(",")[0]
+    margins = []
+    for length in (flip.printed, flip.printed_inside):
+        text = PARTED.replace(stated, stated.replace(figure, f"{length!r} {flip.unit}"))
+        margins.append(solved(tmp_path, text).base.results["area_margin of parts"].value)
+    assert (margins[0] >= 0.0) != (margins[1] >= 0.0)
+    assert (margins[0] >= 0.0) == (flip.becomes == "met")
+
+
+def test_a_sample_does_not_depend_on_its_neighbours(tmp_path: Path) -> None:
+    answer = solved(tmp_path, HEATER)
+    later = AtSamples(answer, CONTROL)
+    values = []
+    for pressures in ([2.6e5], [1.2e5, 2.6e5, 9e5], [4e5, 2.6e5]):
+        inputs = dict(answer.chain.case_inputs(""))
+        inputs["given/p_st"] = np.array(pressures)
+        found = evaluate_samples(answer.chain, inputs, later=later).results
+        values.append({name: found[name].values[pressures.index(2.6e5)] for name in CONTROL})
+    assert values[0] == values[1] == values[2]
+    assert values[0]["pressure_turned_down"] == answer.base.results["pressure_turned_down"].value
+
+
+def test_where_the_clean_unit_does_not_carry_the_duty_there_is_no_such_state(tmp_path: Path) -> None:
+    """The clean area needed at a pressure is more than the installed one exactly where the state is missing."""
+    answer = solved(tmp_path, HEATER)
+    inputs = dict(answer.chain.case_inputs(""))
+    inputs["given/p_st"] = np.linspace(0.4e5, 2.6e5, 12)
+    found = evaluate_samples(answer.chain, inputs, later=AtSamples(answer, CONTROL)).results
+    carries = found["area_margin_clean"].values > 0.0
+    assert carries.any() and not carries.all()
+    assert (np.isfinite(found["T_turned_down"].values) == carries).all()
+
+
+@pytest.mark.parametrize(
+    ("text", "names"),
+    [
+        (HEATER, CONTROL),
+        (PARTED, OF_PARTS),
+        (COOLER, set()),
+        (EVAPORATOR.replace("\n  heat flow: Q_ev", ""), set()),
+    ],
+)
+def test_what_can_be_found_at_samples(tmp_path: Path, text: str, names: set[str]) -> None:
+    assert names_at_samples(solved(tmp_path, text)) == names
+
+
+def test_a_flow_that_the_control_moves_is_said_not_to_be_searched(tmp_path: Path) -> None:
+    text = COOLER + "acceptance:\n  - {that: flow_turned_down >= 5 kg/s, source: sheet}\n"
+    answer = recorded(tmp_path, text)
+    assert answer.flips is not None and answer.flips.left_out == ("flow_turned_down >= 5 kg/s",)
+    assert "is not searched: flow_turned_down >= 5 kg/s." in record_text(answer)
+
+
+def test_a_flow_that_the_control_moves_cannot_be_swept(tmp_path: Path) -> None:
+    sweep = "sweep:\n  m_cold: {from: 20 kg/s, to: 24 kg/s, steps: 3}\n  of: [flow_turned_down]\n"
+    with pytest.raises(Faults) as told:
+        recorded(tmp_path, COOLER + sweep)
+    (fault,) = told.value.faults
+    assert fault.code == "result-unknown" and "cannot be swept" in fault.message
