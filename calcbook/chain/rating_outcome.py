@@ -186,12 +186,14 @@ class DayOne(NamedTuple):
         return self.turned_down.sides["cold"].surface - self.service.sides["cold"].surface
 
     def is_like(self, other: DayOne) -> bool:
-        """Whether the clean unit does the same as in another case, and leaves the same."""
+        """Whether the clean unit does the same as in another case, leaves the same, and is judged alike."""
         return self._marks() == other._marks()
 
-    def _marks(self) -> tuple[str, list[tuple[str, str]]]:
+    def _marks(self) -> str:
         # In words: figures that are not known are alike.
-        return repr((self.clean, self.turned_down)), [(check.id, check.figure) for check in self.checks]
+        left = [(check.id, check.figure) for check in self.checks]
+        judged = [(item.id, item.value, item.limit, item.met) for item in self.criteria]
+        return repr((self.clean, self.turned_down, left, judged))
 
 
 class Rating(NamedTuple):

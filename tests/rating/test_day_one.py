@@ -150,3 +150,17 @@ def test_a_specified_fouling_stays_what_it_is_in_the_states_of_day_one(tmp_path:
             assert one.overall == pytest.approx(other.overall, rel=1e-9)
         assert found.moved == pytest.approx(stated.moved, rel=1e-9)
     assert resistances[0] != pytest.approx(resistances[1], rel=1e-4)
+
+
+def test_a_case_that_restates_the_limit_of_a_criterion_is_told_apart(tmp_path: Path) -> None:
+    """The clean unit does the same in both cases; what is asked of its surface is not the same."""
+    text = (
+        HEATER.replace("  R_f:  {", "  T_max: {value: 80 degC, is: limit of scale, source: sheet}\n  R_f:  {")
+        + "acceptance:\n  - {that: T inside surface clean <= T_max, source: sheet}\n"
+        + "cases:\n  softened:\n    T_max: {value: 130 degC, source: sheet}\n"
+        + "  dirty:\n    R_f: {value: 0.0003 m^2 K/W, source: sheet}\n"
+    )
+    rating = solved(tmp_path, text).rating
+    assert rating is not None and set(rating.told) == {"", "softened"}
+    met = {case: {item.met for item in day.criteria} for case, day in rating.told.items()}
+    assert met["softened"] == {True} and False in met[""]
