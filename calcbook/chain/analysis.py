@@ -48,7 +48,7 @@ from calcbook.chain.pressure import (
     pressure_drop_checks,
     pressure_items,
 )
-from calcbook.chain.rating_outcome import FLOW_RESULT, OF_DAY_ONE
+from calcbook.chain.rating_outcome import OF_DAY_ONE
 from calcbook.chain.sensitivity import derivatives
 from calcbook.chain.solve import Solution, chosen, closed, conditions_of, solve_both
 from calcbook.chain.specified import OWNER as SPECIFIED
@@ -83,6 +83,8 @@ LATER = {
     **dict.fromkeys(OF_PARTS, "parts"),
     **dict.fromkeys(OF_DAY_ONE, "duty"),
 }
+# Those of them that names only start with.
+STARTS = ("allowance_", "fitted ")
 # What is said of a state of the unit turned down that day one does not have, or not by this name.
 NO_STATE = "day one has no such state"
 # What is said of a surface at an end at which the circuit does not close.
@@ -518,6 +520,10 @@ class _Analysis:
     def _report_unknown(self, criterion: Criterion, results: Mapping[str, Result]) -> None:
         name = shown(criterion.result)
         start = next((start for start in LATER if criterion.result.startswith(start)), "")
+        later = [
+            name for name in LATER if name not in STARTS and name not in results and self._is_asked(name)
+        ]
+        known = (*results, *later)
         message = f"there is no result `{name}`"
         if start and self._is_asked(criterion.result):
             message = f"`{name}` was not found: it is later than the time looked at, or there is none"
@@ -529,10 +535,8 @@ class _Analysis:
             criterion.place,
             message,
             found=name,
-            expected=", ".join(results),
-            nearest=nearest_names(
-                criterion.result, (*results, *OF_DAY_ONE) if self._is_asked(FLOW_RESULT) else results
-            ),
+            expected=", ".join(known),
+            nearest=nearest_names(criterion.result, known),
         )
 
     def limit_of(self, criterion: Criterion, kind: QuantityKind, solution: Solution) -> Array | None:
