@@ -590,10 +590,20 @@ class _Analysis:
             )
             return None
         try:
-            return as_kind(quantity, kind).value
+            limit = as_kind(quantity, kind).value
         except QuantityFault as error:
             self.judging.take([error.at(place)])
             return None
+        if kind.name in ("heat flow", "heat flux") and limit < 0.0:
+            self.judging.add(
+                "quantity-negative",
+                place,
+                f"a {kind.name} is a result by its size, whichever way the heat flows",
+                found=shown(quantity.text),
+                expected="a limit that is not below zero",
+            )
+            return None
+        return limit
 
     def _with_acceptances(self, cases: list[CaseOutcome]) -> list[CaseOutcome]:
         """Apply the file's acceptances over all cases at once, then add the open items that remain."""

@@ -72,15 +72,16 @@ def result_figures(chain: Chain, solutions: Mapping[str, Solution]) -> dict[str,
         put(f"UA_{condition}", solution.figure(table["UA"]), "conductance", f"conductance, {condition}")
         if "heat flux" in table:
             # Of a rated unit they are not its duty: the difference of the means is no mean difference of the ends.
+            # By their size: a criterion on a flux must not be met because heat flows inwards.
             put(
                 f"heat_flux_{condition}",
-                solution.figure(table["heat flux"]),
+                np.abs(solution.figure(table["heat flux"])),
                 "heat flux",
                 f"heat flux, {condition}{at_mean}",
             )
             put(
                 f"heat_flow_{condition}",
-                solution.figure(table["heat flow"]),
+                np.abs(solution.figure(table["heat flow"])),
                 "heat flow",
                 f"heat flow, {condition}{at_mean}",
             )

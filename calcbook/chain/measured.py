@@ -18,7 +18,7 @@ Step = tuple[str, str]
 """A condition, at one end of the unit with the place behind it, and the id of a step there."""
 
 JOINED = {"cleanliness": "U_service/U_clean", "excess_surface": "U_clean/U_service - 1"}
-PLAIN = parse_expression("y")
+PLAIN, SIZE = parse_expression("y"), parse_expression("abs(y)")
 
 
 @dataclass(frozen=True, slots=True)
@@ -58,7 +58,8 @@ def measured(chain: Chain, name: str) -> Measured | None:
         parts = {f"U_{condition}": (condition, chain.results["U"]) for condition in CONDITIONS}
         return Measured(name, parse_expression(JOINED[name]), parts)
     step = _step(chain, name)
-    return Measured(name, PLAIN, {"y": step}) if step is not None else None
+    relation = SIZE if name.startswith(("heat_flow_", "heat_flux_")) else PLAIN
+    return Measured(name, relation, {"y": step}) if step is not None else None
 
 
 def _step(chain: Chain, name: str) -> Step | None:

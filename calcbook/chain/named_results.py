@@ -16,6 +16,8 @@ from calcbook.chain.types import CLEAN, CONDITIONS, SERVICE, Chain
 Array = np.ndarray
 RATIOS = ("cleanliness", "excess_surface")
 _WITH_CONDITION = re.compile(r"(U|UA|heat_flux|heat_flow)_(clean|service)(?: on (.+))?")
+# Results that are told by their size, whichever way the heat flows.
+BY_SIZE = ("heat_flux", "heat_flow")
 _OF_TERM = re.compile(r"(T|h|R|dT|phase_change) (.+) (clean|service)")
 _OF_STREAM = re.compile(r"(speed|Re) (.+)")
 _PRESSURE_DROP = re.compile(r"dp (.+)_(clean|service)")
@@ -55,7 +57,10 @@ def result_values(chain: Chain, solutions: Mapping[str, Solution], name: str) ->
     found = _WITH_CONDITION.fullmatch(name)
     if found is not None:
         key = _IN_TABLE[found[1]] + (f" on {found[3]}" if found[3] else "")
-        return solutions[found[2]].figure(chain.results[key]) if key in chain.results else None
+        if key not in chain.results:
+            return None
+        figures = solutions[found[2]].figure(chain.results[key])
+        return np.abs(figures) if found[1] in BY_SIZE else figures
     found = _OF_TERM.fullmatch(name)
     if found is not None and found[1] == "T":
         return dict(interfaces(chain, solutions[found[3]])).get(found[2])

@@ -188,9 +188,9 @@ def evaluate_samples(
             inputs = {
                 name: value[samples.solved] if np.ndim(value) else value for name, value in inputs.items()
             }
-        _solve(chain, inputs, cases, belongs[samples.solved], samples, start, ends_close, later)
-    if directions and "heat_flow_service" in samples.results:
-        flow = np.sign(samples.results["heat_flow_service"].values)
+        service = _solve(chain, inputs, cases, belongs[samples.solved], samples, start, ends_close, later)
+    if directions and "heat flow" in chain.results:
+        flow = np.sign(service.figure(chain.results["heat flow"]))
         samples.mark(flow != np.array(directions)[belongs[samples.solved]], TURNED, samples.solved)
     return samples
 
@@ -211,7 +211,8 @@ def _solve(
     start: Array | None,
     ends_close: bool,
     later: Later | None,
-) -> None:
+) -> Solution:
+    """Solve samples that can have an answer, put results and verdicts into ``samples``; the solution in service."""
     if start is not None:
         start = np.concatenate(list(start[:, :, samples.solved]), axis=1)
     both = solve_both(chain, inputs, thorough=False, start=start)
@@ -255,6 +256,7 @@ def _solve(
     for state in ends if ends_close else ():
         why = f"{OPEN_CIRCUIT} {state.place}, {state.solution.condition}"
         samples.mark(~state.solution.converged, why, samples.solved)
+    return solutions[SERVICE]
 
 
 def results_asked(chain: Chain) -> Iterator[str]:

@@ -34,7 +34,7 @@ from calcbook.chain.samples import (
     phases_of,
     results_asked,
 )
-from calcbook.chain.types import Chain, Input
+from calcbook.chain.types import SERVICE, Chain, Input
 from calcbook.quantities import in_unit, read_tolerance, si_value
 from calcbook.rating.at_samples import AtSamples
 from calcbook.uncertainty.lines import Reach, changes_fluid_state, reach
@@ -214,9 +214,9 @@ class _Search:
         self.base = {name: np.array([case.inputs[name] for case in cases]) for name in self.chain.inputs}
         self.phases = phases_of(self.chain, cases)
         self.directions = [
-            float(np.sign(case.results["heat_flow_service"].value))
+            float(np.sign(case.solutions[SERVICE].number(self.chain.results["heat flow"])))
             for case in cases
-            if "heat_flow_service" in case.results
+            if "heat flow" in self.chain.results
         ]
         self.ends_close = not any(check.id.startswith(OPEN_END) for case in cases for check in case.checks)
         self.later = AtSamples(solved, results_asked(solved.chain))

@@ -141,6 +141,39 @@ def test_an_outlet_is_found_from_the_stated_duty(tmp_path: Path) -> None:
     assert found["duty"] == 1.2e6 and math.isfinite(found["area_margin"])
 
 
+@pytest.mark.parametrize(
+    ("limit", "met"), [("heat_flux_clean <= 50 kW/m^2", False), ("heat_flux_clean >= 50 kW/m^2", True)]
+)
+def test_a_heat_flux_from_outside_to_inside_is_judged_by_its_size(
+    tmp_path: Path, limit: str, met: bool
+) -> None:
+    """Steam is outside: heat flows inwards. By hand q = U ΔT; 0.5 kW/m² would be no evaporator."""
+    text = EVAPORATOR.replace("1500 kW, ", "1500 kW, tolerance: 5 %,").replace(
+        "2.6 bara, ", "2.6 bara, tolerance: 2 %,"
+    )
+    criterion = f"acceptance:\n  - {{that: {limit}, source: sheet, probability: 90 %}}\n"
+    answer = solved(tmp_path, text + criterion + "uncertainty: {of: [heat_flux_clean]}\n")
+    found = figures(answer)
+    by_hand = found["U_clean"] * (IAPWS97(P=0.26, x=1.0).T - PropsSI("T", "P", 3e5, "Q", 0, "n-Pentane"))
+    assert found["heat_flux_clean"] == pytest.approx(by_hand, rel=1e-4) and by_hand > 50e3
+    (row,) = answer.base.criteria
+    assert row.met is met and row.stated_met is met
+    assert row.reached == (1.0 if met else 0.0)
+    assert answer.uncertainty is not None
+    (budget,) = [one for one in answer.uncertainty.budgets if one.result == "heat_flux_clean"]
+    assert budget.value == found["heat_flux_clean"]
+    # More steam pressure, more heat: the slope has the sign of the size.
+    assert next(one.slope for one in budget.rows if one.input.symbol == "p_st") > 0.0
+
+
+def test_a_heat_flux_has_no_limit_below_zero(tmp_path: Path) -> None:
+    criterion = "acceptance:\n  - {that: heat_flux_clean >= -50 kW/m^2, source: sheet}\n"
+    with pytest.raises(Faults) as told:
+        solved(tmp_path, EVAPORATOR + criterion)
+    (fault,) = told.value.faults
+    assert fault.code == "quantity-negative" and "by its size" in fault.message
+
+
 def with_heat(text: str, heat: float) -> str:
     return text.replace("duty:\n", f"duty:\n  heat flow: {{value: {heat!r} W, source: data sheet}}\n")
 

@@ -5,7 +5,7 @@ from __future__ import annotations
 from calcbook.chain.outcome import CaseOutcome
 from calcbook.chain.pressure import acting_methods, drops
 from calcbook.chain.solve import Solution
-from calcbook.chain.types import PressureDrop
+from calcbook.chain.types import CLEAN, SERVICE, PressureDrop
 from calcbook.record.blocks import Block, Heading, Paragraph, Quote, Table
 from calcbook.record.numbers import (
     CONCLUSION_DIGITS,
@@ -117,10 +117,8 @@ def _brief_rows(page: Page) -> list[tuple[str, str, str]]:
     rows += brief_rows(page)
     rows += time_brief_rows(page)
     rows += survey_brief_rows(page)
-    for name, title in (
-        ("heat_flow_service", "Heat flow in service, inside to outside"),
-        ("heat_flow_clean", "Heat flow clean, inside to outside"),
-    ):
+    for condition, word in ((SERVICE, "in service"), (CLEAN, "clean")):
+        name, title = f"heat_flow_{condition}", f"Heat flow {word}, {_direction(page, condition)}"
         result = page.result(name)
         if result is not None and page.calculation.duty is None:
             suffix = " (for 1 m of length)" if page.chain.per_metre else ""
@@ -129,6 +127,13 @@ def _brief_rows(page: Page) -> list[tuple[str, str, str]]:
             rows.append((title + suffix, value, basis))
     rows.append(("Controlling term in service", *_controlling(page.base)))
     return rows + _pressure_rows(page)
+
+
+def _direction(page: Page, condition: str) -> str:
+    """Which way the heat flows."""
+    step = page.chain.results.get("heat flow")
+    inwards = step is not None and page.base.solutions[condition].number(step) < 0.0
+    return "outside to inside" if inwards else "inside to outside"
 
 
 def _beyond_flow(page: Page, name: str) -> str:
