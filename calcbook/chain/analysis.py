@@ -165,6 +165,8 @@ class _Analysis:
         self.results: dict[str, Result] = {}
         # Surfaces at ends of the case at hand at which the circuit does not close.
         self.open_surfaces: frozenset[str] = frozenset()
+        # Results of what the control of the clean unit moves, of the case that is judged.
+        self.moved: tuple[str, ...] = ()
 
     def solved(self) -> Solved | None:
         names = ("", *self.chain.calculation.cases)
@@ -413,6 +415,7 @@ class _Analysis:
             for number, criterion in self._numbered()
             if self._is_later(criterion) and (keeps or not is_found_once(criterion.result))
         }
+        self.moved = tuple(name for name in OF_DAY_ONE if name in results)
         return self._judged(wanted, case, results, solutions, self._not_there)
 
     def _numbered(self) -> Iterator[tuple[int, Criterion]]:
@@ -500,7 +503,8 @@ class _Analysis:
         if is_found_once(criterion.result):
             return self._not_lost(number, criterion, case, solutions)
         kind = vocabulary()[OF_DAY_ONE[criterion.result][0]]
-        return self._not_met(number, criterion, case, solutions, kind, NO_STATE)
+        words = f"the control moves {' and '.join(self.moved)}" if self.moved else NO_STATE
+        return self._not_met(number, criterion, case, solutions, kind, words)
 
     def _not_lost(
         self, number: int, criterion: Criterion, case: str, solutions: Mapping[str, Solution]
@@ -530,6 +534,9 @@ class _Analysis:
         elif start:
             where = " in its `duty:`" if criterion.result in OF_PARTS else ""
             message = f"`{name}` is found only where the file has `{LATER[start]}:`{where}"
+            duty = self.chain.calculation.duty
+            if where and duty is not None and not duty.can_be_cut:
+                message = f"`{name}` is not found: this unit cannot be cut into parts that follow each other"
         self.judging.add(
             "result-unknown",
             criterion.place,

@@ -278,7 +278,15 @@ class DutyLayout:
 
     def _stated_heat(self, stated: Value, heats: Mapping[str, str]) -> None:
         """The duty as the file states it, and the heat balance of every stream that has one beside it."""
-        duty = self.results["duty"] = self.scope.value(stated, "heat flow", OWNER, "heat flow")
+        duty = self.results["duty"] = self._step(
+            "Q",
+            "Q_d",
+            "duty",
+            "Q",
+            {"Q": self.scope.value(stated, "heat flow", OWNER, "heat flow")},
+            "as stated",
+            "heat flow",
+        )
         self._check(
             "heat balance / heat flow",
             "Q_d > 0",

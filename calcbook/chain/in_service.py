@@ -5,8 +5,8 @@ from __future__ import annotations
 from collections.abc import Collection
 from dataclasses import replace
 
-from calcbook.calcfile.calculation import TimeInService
-from calcbook.calcfile.in_service import DUTY
+from calcbook.calcfile.calculation import Calculation, TimeInService
+from calcbook.calcfile.in_service import CLEANED_UNIT, DUTY
 from calcbook.chain.scope import Scope
 from calcbook.faults import Place
 from calcbook.library import vocabulary
@@ -47,12 +47,18 @@ def lay_out_in_service(scope: Scope, grows: bool, results: Collection[str]) -> d
             scope, cleaning.place, "`cleaning` needs a heat flow", "temperatures on both sides, or a duty"
         )
     if cleaning.against == DUTY and "duty" not in results:
-        _missing(scope, cleaning.place, "the loss is counted against a duty that is not stated", "duty: {…}")
+        _missing(
+            scope,
+            cleaning.place,
+            "the loss is counted against a duty that is not stated",
+            "a duty: {…} with both ends of a stream, or with its heat flow",
+        )
     if not cleaning.against:
+        is_duty = loss_against(scope.calculation) == DUTY
         scope.assume(
             "cleaning/loss against",
-            "The heat that fouling loses is counted from the cleaned unit.",
-            "nothing is stated",
+            f"The heat that fouling loses is counted from the {'duty' if is_duty else 'cleaned unit'}.",
+            "the heat flow of the duty is stated" if is_duty else "nothing is stated",
             CLEANING,
         )
     for key, value, kind, title in (
@@ -65,6 +71,14 @@ def lay_out_in_service(scope: Scope, grows: bool, results: Collection[str]) -> d
             if not value.symbol and name in scope.inputs:
                 scope.inputs[name] = replace(scope.inputs[name], title=title)
     return found
+
+
+def loss_against(calculation: Calculation) -> str:
+    """What the heat that fouling loses is counted from: as stated, else a stated duty, else the cleaned unit."""
+    cleaning, duty = calculation.cleaning, calculation.duty
+    if cleaning is not None and cleaning.against:
+        return cleaning.against
+    return DUTY if duty is not None and duty.heat_flow is not None else CLEANED_UNIT
 
 
 def _until(scope: Scope, time: TimeInService) -> str:

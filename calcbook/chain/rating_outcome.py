@@ -83,6 +83,7 @@ class UnitState(NamedTuple):
     sides: Mapping[str, SideState]
 
 
+FLOW, PRESSURE, TEMPERATURE = "flow", "pressure", "saturation temperature"
 # The state of the clean unit under its control, and what that moves on a side.
 TURNED_DOWN = "turned down"
 # Results of it by name, with their quantity and their meaning.
@@ -98,7 +99,6 @@ OF_DAY_ONE = {
         "saturation temperature of the throttled stream with which the clean unit gives the duty",
     ),
 }
-FLOW, PRESSURE, TEMPERATURE = "flow", "pressure", "saturation temperature"
 
 
 def in_case(case: str) -> str:
@@ -127,6 +127,11 @@ class Throttle(NamedTuple):
     def other(self) -> str:
         """The side that keeps what the duty states of it."""
         return other_side(self.side)
+
+    @property
+    def way(self) -> str:
+        """Which way the control moves what it takes, so that less heat flows."""
+        return "turned down" if self.what == FLOW or self.side == "hot" else "raised"
 
 
 class DayOne(NamedTuple):

@@ -10,24 +10,29 @@ import numpy as np
 from calcbook.chain.completing import completed
 from calcbook.chain.findings import lacking_property, phases_not_checked
 from calcbook.chain.outcome import CaseOutcome
-from calcbook.chain.rating_outcome import WITH_ALLOWANCES, DayOne, state_in
+from calcbook.chain.rating_outcome import OF_DAY_ONE, WITH_ALLOWANCES, DayOne, state_in
 from calcbook.chain.solve import solve
 from calcbook.chain.types import CLEAN, SERVICE, Chain
 from calcbook.rating.opened import open_chain
 from calcbook.rating.turning_down import TurnedDown, turned_down
 from calcbook.rating.unit_states import judged, limits_of_duty, unit_state
 
+# Why there is none.
+NO_FLOW = "a flow is not stated from which an outlet would follow"
+
 
 def day_one(before: Chain, case: CaseOutcome) -> DayOne | str | None:
     """The clean unit at the duty's inlets in a case, or in words why it has no answer there.
 
-    None where a flow is missing that it takes, or nothing fouls.
+    None where nothing fouls or a flow is missing that it takes, unless a criterion asks for it.
     """
-    if not any(row.kind == "fouling" for row in case.terms[SERVICE]):
+    fouls = any(row.kind == "fouling" for row in case.terms[SERVICE])
+    is_asked = any(item.result in OF_DAY_ONE for item in before.calculation.acceptance)
+    if not (fouls or is_asked):
         return None
     chain = open_chain(before, case, "hot", "cold")
     if chain is None:
-        return None
+        return NO_FLOW if is_asked else None
     inputs = chain.case_inputs(case.name)
     clean_chain = open_chain(before, case, "hot", "cold", condition=CLEAN)
     assert clean_chain is not None, "the same calculation found its figures in service"

@@ -14,6 +14,7 @@ import numpy as np
 
 from calcbook.calcfile.in_service import CLEANED_UNIT, DUTY
 from calcbook.chain.growth_outcome import ClosedForm, Interval, OverTime, TimeRow
+from calcbook.chain.in_service import loss_against
 from calcbook.chain.outcome import Result, Solved
 from calcbook.chain.pressure import drops, evaluate_pressure_drops
 from calcbook.chain.samples import Samples, evaluate_samples
@@ -127,8 +128,11 @@ def _row(solution: Solution, name: str, times: Array) -> Array:
 def _heat_of(solved: Solved) -> tuple[Chain, str, str]:
     """The chain that gives the heat, the id of the heat (empty where there is none), and how it is found."""
     chain = solved.chain
-    if chain.calculation.duty is None:
+    duty = chain.calculation.duty
+    if duty is None:
         return chain, chain.results.get("heat flow", ""), "at the stated bulk temperatures"
+    if not any(side.has_ends for side in duty.sides.values()):
+        return chain, chain.results["heat reached"], "between both saturation temperatures"
     if "duty" in chain.results:
         opened = open_chain(solved.chain, solved.base, "hot", "cold")
         if opened is not None and "heat reached" in opened.results:
@@ -249,7 +253,7 @@ class _Cleaning:
         cleaning = course.chain.calculation.cleaning
         assert cleaning is not None
         self.counts_money = cleaning.cost is not None
-        self.against = cleaning.against or CLEANED_UNIT
+        self.against = loss_against(course.chain.calculation)
         self.loss_relation = LOSS[self.counts_money, self.against]
         self.mean_relation = MEAN[self.counts_money]
         stated = course.solved.base.solutions[SERVICE]

@@ -69,6 +69,11 @@ def _opened(
         name: replace(stream, temperature=None) if name in open_streams else stream
         for name, stream in calculation.streams.items()
     }
+    # What a stream carries between ends that it keeps goes before a stated heat flow: both need not agree.
+    has_balance = any(
+        name not in sides and side.has_ends and not side.open_end and before.streams[side.stream].mass_flow
+        for name, side in opened.items()
+    )
     changed = replace(
         calculation,
         duty=replace(
@@ -76,9 +81,10 @@ def _opened(
             hot=opened["hot"],
             cold=opened["cold"],
             parts=1,
-            # Beside one stated outlet a stated heat flow still is the duty.
-            heat_flow=duty.heat_flow if len(sides) < len(opened) else None,
+            heat_flow=None if has_balance or len(sides) == len(opened) else duty.heat_flow,
         ),
+        # Its figures are taken from the calculation itself; what it is counted against may be gone here.
+        cleaning=None,
         streams=streams,
     )
     collector = Collector()

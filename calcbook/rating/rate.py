@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import replace
 
+from calcbook.calcfile.calculation import Duty
 from calcbook.chain.outcome import CaseOutcome, Result, Solved
 from calcbook.chain.rating_outcome import OF_DAY_ONE, DayOne, Rating, in_case
 from calcbook.chain.types import Chain, OpenItem
@@ -29,7 +30,7 @@ def rated(solved: Solved) -> Solved:
         replace(
             case,
             open_items=(*case.open_items, *_open_items(rating, case.name)),
-            results={**case.results, **_results(rating, case.name)},
+            results={**case.results, **_results(rating, case.name, chain.calculation.duty)},
         )
         for case in solved.cases
     ]
@@ -50,11 +51,14 @@ def _open_items(rating: Rating, case: str) -> list[OpenItem]:
     return [OpenItem(f"day one{where}", "check", f"Day one has no answer{where}: {reason}.")]
 
 
-def _results(rating: Rating, case: str) -> dict[str, Result]:
+def _results(rating: Rating, case: str, duty: Duty) -> dict[str, Result]:
     """What the control of the clean unit has moved in a case, as results that a criterion may name."""
     day = rating.answered.get(case)
+    if day is None:
+        return {}
+    moved = f"{duty.sides[day.throttle.side].stream}, {day.throttle.way}"
     found = {}
-    for name, value in (day.moved if day is not None else {}).items():
+    for name, value in day.moved.items():
         kind, title = OF_DAY_ONE[name]
-        found[name] = Result(name, value, vocabulary()[kind], title)
+        found[name] = Result(name, value, vocabulary()[kind], f"{title}: {moved}")
     return found

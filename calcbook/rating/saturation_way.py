@@ -25,7 +25,7 @@ STEPS, LARGEST_PART = 12, 0.999
 # A saturation temperature is known this well, in K. Where the circuit ends first, that place is halved so often.
 KNOWN, HALVINGS = 1e-9, 20
 # What became of a sample: its place is known, or why it has none.
-FOUND, NOT_CLOSED, NOT_CARRIED, CARRIED_STILL, CARRIED_TO_END = range(5)
+FOUND, NOT_CLOSED, NOT_CARRIED, CARRIED_STILL, CARRIED_TO_END, NO_SATURATION = range(6)
 
 
 class NoState(Exception):
@@ -76,8 +76,13 @@ class Places(NamedTuple):
                 return str(reason)
         if became == CARRIED_STILL:
             return f"the clean unit carries the duty with {percent(1.0 - LARGEST_PART)} of the temperature difference still"
-        way = "down" if throttle.side == "hot" else "up"
-        return f"the clean unit carries the duty {way} to a {what} at which its circuit does not close"
+        way = "down" if throttle.way == "turned down" else "up"
+        why = (
+            "beyond which the stream has no saturation"
+            if became == NO_SATURATION
+            else "at which its circuit does not close"
+        )
+        return f"the clean unit carries the duty {way} to a {what} {why}"
 
 
 @dataclass(frozen=True, eq=False)
@@ -142,7 +147,8 @@ class Way:
         closes = ~np.isnan(table[active, first[active]])
         if not closes.all():
             low, high, closes = self._halved(active, low, high, closes)
-            became[active[~closes]] = CARRIED_TO_END
+            (figure,) = self.at(high, active).values()
+            became[active[~closes]] = np.where(np.isnan(figure), NO_SATURATION, CARRIED_TO_END)[~closes]
         places = np.full(size, np.nan)
         places[active[closes]] = self._between(active[closes], low[closes], high[closes])
         return Places(places, became, table[:, 0])

@@ -8,7 +8,7 @@ from pathlib import Path
 import pytest
 from CoolProp.CoolProp import PropsSI
 from iapws import IAPWS97
-from rated_units import COOLER, EVAPORATOR, HEATER, solved
+from rated_units import BY_TEMPERATURE, COOLER, EVAPORATOR, HEATER, solved
 
 from calcbook.chain.outcome import CheckResult, Solved
 from calcbook.chain.rating_outcome import DayOne
@@ -212,3 +212,124 @@ def test_a_record_says_what_the_heat_rests_on(tmp_path: Path) -> None:
     assert "| Duty | 1 500 000 W | as stated |" in text.replace("\u2009", " ")
     assert "U_service·A_installed·ΔT between both saturation temperatures" in text
     assert "The unit at the saturation temperatures of both streams" in text
+
+
+# --- day one of a stated duty ---------------------------------------------------------------------------
+
+
+def test_the_control_holds_the_outlet_that_is_stated_beside_another_heat_flow(tmp_path: Path) -> None:
+    """Water from 18 to 66 °C takes what it takes: the clean heater at that outlet is the one without a stated duty."""
+    plain = day_of(solved(tmp_path, HEATER)).turned_down
+    stated = 1.08 * figures(solved(tmp_path, HEATER))["duty"]
+    answer = solved(tmp_path, with_heat(HEATER, stated))
+    beside = day_of(answer).turned_down
+    assert plain is not None and beside is not None
+    assert beside.heat == pytest.approx(plain.heat, rel=1e-12) and beside.heat < stated / 1.07
+    assert beside.sides["hot"].pressure == pytest.approx(plain.sides["hot"].pressure, rel=1e-9)
+    # By hand: m·cp·ΔT of water (4183 J/(kg K) within 0.2 %).
+    assert beside.heat == pytest.approx(9.5 * 4183.0 * 48.0, rel=2e-3)
+    # Without a stated outlet the stated duty is what it gives, with the outlet that follows.
+    given = "  T_co: {value: 66 degC,   is: water outlet,          source: sheet}\n"
+    opened = with_heat(HEATER.replace(", outlet: T_co", "").replace(given, ""), stated)
+    alone = day_of(solved(tmp_path, opened)).turned_down
+    assert alone is not None and alone.heat == pytest.approx(stated, rel=1e-9)
+    assert alone.sides["cold"].outlet > 66.0 + 273.15
+
+
+GROWING = EVAPORATOR.replace(
+    "resistance: R_f, on: inside",
+    "growth: {model: fouling-linear, r: {value: 1e-11 m^2 K/J, source: s}, after: {value: 90 days, source: s}}, on: inside",
+)
+IN_SERVICE = (
+    "time in service: {until: {value: 400 days, source: s}, steps: 5}\n"
+    "cleaning:\n  duration: {value: 3 days, source: s}\n"
+)
+ASKED = "acceptance:\n  - {that: pressure_turned_down >= 1.1 bara, source: sheet}\n"
+
+
+def test_where_nothing_fouls_the_control_acts_all_the_same(tmp_path: Path) -> None:
+    clean = EVAPORATOR.replace(
+        "  - {name: deposit, kind: fouling, resistance: R_f, on: inside}\n", ""
+    ).replace("  R_f:  {value: 0.00018 m^2 K/W, is: allowance,       source: sheet}\n", "")
+    unasked = solved(tmp_path, clean)
+    assert unasked.rating is not None and not unasked.rating.days
+    answer = solved(tmp_path, clean + ASKED)
+    (row,) = answer.base.criteria
+    beside = figures(solved(tmp_path, EVAPORATOR))["pressure_turned_down"]
+    assert row.value == pytest.approx(beside, rel=1e-9) and row.met
+
+
+def test_a_state_that_a_criterion_asks_for_and_no_flow_gives_is_an_open_item(tmp_path: Path) -> None:
+    text = (
+        BY_TEMPERATURE.replace(
+            "situation: inside-tube", "coefficient: {value: 5000 W/(m^2 K), source: s}, on: inside"
+        )
+        .replace(", flow: m_w", "")
+        .replace("  m_w:  {value: 9.5 kg/s,  is: water flow,            source: sheet}\n", "")
+    )
+    text = with_heat(text, 1.9e6)
+    assert not solved(tmp_path, text).base.open_items
+    answer = solved(tmp_path, text + "acceptance:\n  - {that: T_turned_down >= 100 degC, source: sheet}\n")
+    (item,) = answer.base.open_items
+    assert "a flow is not stated from which an outlet would follow" in item.text
+    assert [row.met for row in answer.base.criteria] == [False]
+
+
+def test_what_the_control_moves_names_its_stream_and_which_way(tmp_path: Path) -> None:
+    titles = {
+        way: solved(tmp_path, EVAPORATOR.replace("duty:\n", f"duty:\n  throttled: {side}\n"))
+        .base.results["pressure_turned_down"]
+        .title
+        for side, way in (("hot", "steam, turned down"), ("cold", "pentane, raised"))
+    }
+    assert all(title.endswith(f": {way}") for way, title in titles.items())
+
+
+def test_a_flow_is_asked_for_where_the_control_moves_a_pressure(tmp_path: Path) -> None:
+    text = EVAPORATOR + "acceptance:\n  - {that: flow_turned_down >= 1 kg/s, source: sheet}\n"
+    (row,) = solved(tmp_path, text).base.criteria
+    assert not row.met and row.words == "the control moves pressure_turned_down and T_turned_down"
+
+
+def test_a_cold_stream_is_raised_no_further_than_its_critical_point(tmp_path: Path) -> None:
+    """Propane boils up to 369.9 K and 4.25 MPa (its critical point); steam of 2.6 bar stands above."""
+    text = (
+        EVAPORATOR.replace("duty:\n", "duty:\n  throttled: cold\n")
+        .replace("n-pentane", "propane")
+        .replace("value: 3 bara", "value: 30 bara")
+        .replace("1500 kW", "100 kW")
+    )
+    day = day_of(solved(tmp_path, text))
+    assert day.turned_down is None
+    assert day.no_turn_down.endswith("up to a pressure beyond which the stream has no saturation")
+
+
+def test_a_stated_flow_of_the_throttled_stream_is_said_to_be_kept(tmp_path: Path) -> None:
+    text = EVAPORATOR.replace("pressure: p_st}", "pressure: p_st, flow: {value: 0.9 kg/s, source: s}}")
+    answer = solved(tmp_path, text)
+    state = day_of(answer).turned_down
+    assert state is not None and state.sides["hot"].changing < 0.9
+    assert "The flow of steam is kept as stated, 0.9 kg/s" in record_text(answer)
+    assert "The flow of steam is kept" not in record_text(solved(tmp_path, EVAPORATOR))
+
+
+def test_the_duty_has_one_symbol_whatever_its_given_is_called(tmp_path: Path) -> None:
+    """A given Q_h beside the heat Q_h of the hot stream: a row with both could not be redone."""
+    text = with_heat(COOLER, 1.0).replace("{value: 1.0 W, source: data sheet}", "Q_h")
+    text = text.replace("givens:\n", "givens:\n  Q_h: {value: 1350 kW, is: duty, source: data sheet}\n")
+    rows = [line for line in record_text(solved(tmp_path, text)).splitlines() if line.startswith("| closure")]
+    assert "(Q_h − Q_d)/Q_d" in rows[0] and "(Q_c − Q_d)/Q_d" in rows[1]
+
+
+@pytest.mark.parametrize(("against", "word"), [("", "duty"), ("  loss against: cleaned unit\n", "")])
+def test_a_stated_duty_is_what_fouling_takes_from(tmp_path: Path, against: str, word: str) -> None:
+    """A kettle under its control loses nothing before the duty: counted from the clean unit it would at once."""
+    text = GROWING.replace("report:", IN_SERVICE + against + "report:").replace(
+        "  R_f:  {value: 0.00018 m^2 K/W, is: allowance,       source: sheet}\n", ""
+    )
+    answer = solved(tmp_path, text)
+    said = [item.text for item in answer.chain.assumptions if item.id == "cleaning/loss against"]
+    assert said == ([f"The heat that fouling loses is counted from the {word}."] if word else [])
+    assert answer.over_time is not None and answer.over_time.interval is not None
+    assert answer.rating is not None and not answer.rating.unanswered
+    assert "the heat is what U and area give between both saturation temperatures" in record_text(answer)

@@ -56,7 +56,7 @@ def day_one_blocks(page: Page) -> list[Block]:
 def _day_blocks(page: Page, day: DayOne, case: str) -> list[Block]:
     states = {WITH_ALLOWANCES: day.service, "clean": day.clean}
     if day.turned_down is not None:
-        states[f"clean, {way_of(day)} until {until_words(page, day)}"] = day.turned_down
+        states[f"clean, {day.throttle.way} until {until_words(page, day)}"] = day.turned_down
     what = (
         f"The same states at the inlets of case {case}."
         if case and "" in page.days
@@ -119,7 +119,7 @@ def _control(page: Page, day: DayOne) -> str:
     stream = _side(page, throttle.side).stream
     moved = f"{throttle.side} flow" if throttle.what == FLOW else f"{throttle.what} of {stream}"
     last = (
-        f", and clean with the {moved} {way_of(day)} until {until_words(page, day)}"
+        f", and clean with the {moved} {day.throttle.way} until {until_words(page, day)}"
         if day.turned_down
         else ""
     )
@@ -127,13 +127,8 @@ def _control(page: Page, day: DayOne) -> str:
         return f"{last}. The file says that the control throttles the {throttle.side} side."
     if day.turned_down is None:
         return "."
-    doing = "Turning down" if way_of(day) == "turned down" else "Raising"
+    doing = "Turning down" if day.throttle.way == "turned down" else "Raising"
     return f"{last}. {doing} the {moved} is one way of control, taken here as the file names none (`throttled:`)."
-
-
-def way_of(day: DayOne) -> str:
-    """Which way the control moves what it takes."""
-    return "turned down" if day.throttle.what == FLOW or day.throttle.side == "hot" else "raised"
 
 
 def until_words(page: Page, day: DayOne) -> str:
@@ -232,6 +227,28 @@ def _of_saturation(page: Page, day: DayOne) -> list[str]:
     ]
 
 
+def _of_kept_flow(page: Page, day: DayOne) -> list[str]:
+    """That a stated flow of a stream whose saturation is moved is kept, though less of it changes phase."""
+    throttle, state = day.throttle, day.turned_down
+    if throttle.what == FLOW or state is None:
+        return []
+    side = state.sides[throttle.side]
+    if not math.isfinite(side.mass_flow):
+        return []
+    kind, report = vocabulary()["mass flow"], page.calculation.report
+    flow, changing = (
+        in_report_unit(one, kind, report, CONCLUSION_DIGITS) for one in (side.mass_flow, side.changing)
+    )
+    return [
+        f"The flow of {_side(page, throttle.side).stream} is kept as stated, {flow}, of which {changing} change phase then: a"
+        " film that follows the flow is that of the former."
+    ]
+
+
+def _heat(page: Page, state: UnitState) -> str:
+    return in_report_unit(state.heat, vocabulary()["heat flow"], page.calculation.report, CONCLUSION_DIGITS)
+
+
 def throttled_words(page: Page, day: DayOne, state: UnitState) -> str:
     """How far the control is throttled, in words."""
     throttle, report, kinds = day.throttle, page.calculation.report, vocabulary()
@@ -276,9 +293,9 @@ def _sentences(page: Page, day: DayOne) -> tuple[str, ...]:
         found.append(
             f"{_with(page, day)} the clean unit runs at {throttled_words(page, day, day.turned_down)};"
             f" the surface on the cold side then stands {kelvin(abs(hotter))} {'above' if hotter >= 0.0 else 'below'} that"
-            " with the allowances."
+            f" with the allowances, which is that of {_heat(page, day.service)} uncontrolled."
         )
-        found += _of_saturation(page, day)
+        found += [*_of_saturation(page, day), *_of_kept_flow(page, day)]
         if throttle.what == FLOW and day.is_slow:
             found.append(
                 "At that flow its speed lies below its usual window: the allowances, on whichever side, breed"

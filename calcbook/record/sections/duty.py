@@ -25,7 +25,7 @@ from calcbook.record.numbers import (
     unit_text,
 )
 from calcbook.record.page import Page, case_name, counted
-from calcbook.record.sections.day_one import throttled_words, until_words, way_of
+from calcbook.record.sections.day_one import throttled_words, until_words
 
 
 def brief_rows(page: Page) -> list[tuple[str, str, str]]:
@@ -61,7 +61,7 @@ def brief_rows(page: Page) -> list[tuple[str, str, str]]:
             (
                 "Clean unit under its control",
                 runs,
-                f"day one, section 12: {way_of(day)} until {until_words(page, day)}",
+                f"day one, section 12: {day.throttle.way} until {until_words(page, day)}",
             )
         )
     return rows

@@ -50,6 +50,14 @@ def _aim(interval: Interval) -> str:
     return "least mean cost over a cycle" if interval.counts_money else "most heat over a cycle"
 
 
+def _stated(page: Page) -> str:
+    """Where U and the margin stand, and what the basis of the heat is said of."""
+    duty = page.calculation.duty
+    if duty is not None and not any(side.has_ends for side in duty.sides.values()):
+        return "the stated saturation temperatures; the heat is what U and area give"
+    return "the stated ends; heat and outlets"
+
+
 def time_blocks(page: Page) -> list[Block]:
     """The table over the time in service, when the duty is lost, and the interval."""
     found = page.solved.over_time
@@ -61,7 +69,7 @@ def time_blocks(page: Page) -> list[Block]:
         Heading(3, "Time in service"),
         Paragraph(
             "The unit from one cleaning on. Every term that grows starts from nothing there; what else fouls stays as"
-            f" stated. U and the margin stand at the stated ends; heat and outlets {found.heat_basis}. Section 9"
+            f" stated. U and the margin stand at {_stated(page)} {found.heat_basis}. Section 9"
             " stands at the times that the terms state."
             if found.rows and math.isfinite(found.rows[0].heat)
             else "The unit from one cleaning on. Every term that grows starts from nothing there; what else fouls stays"
