@@ -402,6 +402,213 @@ def test_water_boils_at_the_hot_inlet_before_it_does_at_the_mean(tmp_path: Path)
     assert outcome.results["T inside surface clean"].value - 273.15 < 60.0
 
 
+# --- the nearest of several, and what is told of it ---------------------------------------------------
+
+
+def with_criteria(*criteria: str) -> str:
+    lines = "".join(f"      - {{that: {text}, source: test}}\n" for text in criteria)
+    return PLANE.partition("    acceptance:\n")[0] + "    acceptance:\n" + lines
+
+
+def test_of_flips_on_both_sides_the_nearer_is_found_though_its_interval_ends_farther_off(
+    tmp_path: Path,
+) -> None:
+    """The outer film has more than half of the whole below R_f = 0.871e-3 m² K/W, the deposit above 1.106e-3 of them: by hand
+    1/h_2 − (1/h_1 + t/k) and 1/h_2 + (1/h_1 + t/k). From 1e-3 the search looks at 0.906e-3 and 0.869e-3, at 1.104e-3 and
+    1.150e-3: the interval above ends farther off than the one below.
+    """
+    spread = (1.106e-3 - 0.871e-3) / 2.0
+    outer, rest = 0.871e-3 + spread, spread
+    body = PLANE.replace("0.0002 m^2 K/W", "0.001 m^2 K/W").replace(
+        "500 W/(m^2 K), is", f"{1.0 / outer!r} W/(m^2 K), is"
+    )
+    wall = 2e-3 / 200.0
+    body = body.replace("16 W/(m K)", "200 W/(m K)").replace(
+        "2000 W/(m^2 K)", f"{1.0 / (rest - wall)!r} W/(m^2 K)"
+    )
+    deposit = Input(
+        "given/R_f", "R_f", "R_f", vocabulary()["fouling resistance"], 1e-3, "", "s", Place("x"), True
+    )
+    ends = {}
+    for direction, flip in ((-1, 0.871e-3), (1, 1.106e-3)):
+        figures = (1e-3, *reach(deposit, 1e-3, direction, False).figures)
+        ends[direction] = next(
+            (abs(before - 1e-3), abs(after - 1e-3))
+            for before, after in pairwise(figures)
+            if direction * before < direction * flip <= direction * after
+        )
+    assert ends[1][0] < 1e-3 - 0.871e-3 < ends[-1][1] < ends[1][1]
+    flip = one(flips_of(tmp_path, body), CONTROLLING, "R_f")
+    assert (flip.was, flip.becomes) == ("no controlling term", "deposit")
+    assert flip.at == pytest.approx(1.106e-3, rel=2e-9)
+
+
+def test_each_of_two_criteria_has_its_own_flip(tmp_path: Path) -> None:
+    found = flips_of(tmp_path, with_criteria("U_service >= U_min", "U_clean >= 300 W/(m^2 K)"))
+    at = {
+        flip.id: flip.at for flip in found.of_kind(CRITERION) if (flip.input.symbol, flip.case) == ("h_2", "")
+    }
+    # Clean the others are 5e-4 + 1.25e-4 m² K/W of the 1/300 that are allowed.
+    assert at == pytest.approx(
+        {"criterion 1": CLOSED_FORMS["h_2"], "criterion 2": 1.0 / (1.0 / 300.0 - 6.25e-4)}, rel=2e-9
+    )
+
+
+def test_of_another_controlling_term_only_the_nearest_case_is_told(tmp_path: Path) -> None:
+    cases = "    cases: {scaled: {R_f: {value: 0.0012 m^2 K/W, source: test}}}\n"
+    (flip,) = [
+        flip for flip in flips_of(tmp_path, PLANE + cases).of_kind(CONTROLLING) if flip.input.symbol == "h_2"
+    ]
+    # The others have 8.25e-4 m² K/W, and 1.825e-3 in the case: nearer to the 2e-3 of the film.
+    assert flip.case == "scaled" and flip.at == pytest.approx(1.0 / 1.825e-3, rel=2e-9)
+
+
+def test_a_flip_between_the_last_figure_with_an_answer_and_the_first_without_is_found(tmp_path: Path) -> None:
+    """By hand T_1 = T_2 + q·R: 1400 W/m² are left at 23.955 °C; at 20 °C the heat flow turns round."""
+    found = flips_of(tmp_path, with_criteria("heat_flux_service >= 1400 W/m^2"))
+    assert one(found, CRITERION, "T_1").at - 273.15 == pytest.approx(20.0 + 1400.0 * 2.825e-3, abs=1e-6)
+    assert one(found, CRITERION, "T_2").at - 273.15 == pytest.approx(80.0 - 1400.0 * 2.825e-3, abs=1e-6)
+
+
+def test_a_limit_that_stops_flips_at_the_first_figure_without_an_answer(tmp_path: Path) -> None:
+    """A deposit of half the bore leaves none: 9 mm in 18 mm, or a bore of 4 mm with a deposit of 2 mm."""
+    body = """
+    givens:
+      d_i: {value: 18 mm, is: bore, source: test}
+      d_o: {value: 40 mm, is: outside diameter, source: test}
+      t_d: {value: 2 mm, is: deposit, source: test}
+      T_1: {value: 80 degC, is: inner temperature, source: test}
+      T_2: {value: 20 degC, is: outer temperature, source: test}
+    geometry: {shape: tube, inside diameter: d_i, outside diameter: d_o, length: {value: 3 m, source: test}}
+    resistances:
+      - {name: inner film, kind: film, coefficient: {value: 900 W/(m^2 K), source: test}, on: inside, temperature: T_1}
+      - name: scale
+        kind: fouling
+        on: inside
+        deposit: {thickness: t_d, conductivity: {value: 1 W/(m K), source: test}}
+      - {name: wall, kind: wall, conductivity: {value: 16 W/(m K), source: test}}
+      - {name: outer film, kind: film, coefficient: {value: 500 W/(m^2 K), source: test}, on: outside, temperature: T_2}
+    report: {U on: outside}
+    """
+    found = flips_of(tmp_path, body)
+    for symbol, expected, printed in (("t_d", 0.009, 9.0), ("d_i", 0.004, 4.0)):
+        flip = one(found, LIMIT, symbol)
+        assert (flip.id, flip.level) == ("scale / deposit / bore", "stop")
+        assert (flip.was, flip.becomes) == ("within", "outside")
+        assert flip.at == pytest.approx(expected, rel=2e-9)
+        # Six digits, the last of them away from the present figure.
+        assert flip.printed == pytest.approx(printed, rel=1.001e-5)
+
+
+def test_cases_tell_the_figures_units_and_tolerances_that_they_restate(tmp_path: Path) -> None:
+    cases = """    cases:
+      scaled:
+        R_f: {value: 1.2 m^2 K/kW, source: test}
+        h_1: {value: 1 kW/(m^2 K), source: test}
+"""
+    found = flips_of(tmp_path, PLANE + cases)
+    deposit, inner = (one(found, CRITERION, symbol, "scaled") for symbol in ("R_f", "h_1"))
+    # 1/250 less 1e-3 + 1.25e-4 + 2e-3 m² K/W of the others.
+    assert (deposit.now_text, deposit.unit) == ("1.2 m^2 K/kW", "m^2 K/kW")
+    assert deposit.printed == pytest.approx(0.875, rel=1e-5) and deposit.change == -0.325
+    # The 10 % of the base case are those of the figure in the case.
+    assert (inner.now_text, inner.tolerance) == ("1 kW/(m^2 K)", "10 %")
+    expected = 1.0 / (1.0 / 250.0 - 1.2e-3 - 1.25e-4 - 2e-3)
+    assert inner.at == pytest.approx(expected, rel=2e-9)
+    assert inner.tolerances == pytest.approx((expected - 1000.0) / 100.0, rel=1e-4)
+
+
+def test_a_tolerance_of_nothing_is_not_counted(tmp_path: Path) -> None:
+    body = PLANE.replace(
+        "value: 0.0002 m^2 K/W, is: allowance", "value: 0 m^2 K/W, tolerance: 10 %, is: zero"
+    )
+    flip = one(flips_of(tmp_path, body), CRITERION, "R_f")
+    assert flip.tolerance == "10 %" and math.isnan(flip.tolerances)
+
+
+@pytest.mark.parametrize(
+    ("part", "digits"),
+    [
+        # Six digits of the figure would not tell a change of 1e-6 of it: four of the change.
+        (1e-6, 10),
+        # No figure is printed with more than ten.
+        (3e-8, 10),
+        (1e-4, 8),
+    ],
+)
+def test_a_figure_close_to_its_flip_is_told_with_the_digits_of_the_change(
+    tmp_path: Path, part: float, digits: int
+) -> None:
+    """By hand R_f + (1/U_min − R): what is left is a small part of the allowance of 2e-4 m² K/W."""
+    required = 1.0 / (2.825e-3 + part * 2e-4)
+    body = PLANE.replace("250 W/(m^2 K), is: required", f"{required!r} W/(m^2 K), is: required")
+    flip = one(flips_of(tmp_path, body), CRITERION, "R_f")
+    left = 1.0 / required - 2.825e-3
+    # Known to 1e-4 of the change; the sums of resistances round at 4e-19 m² K/W, 1e-7 of the smallest change.
+    assert flip.at - 2e-4 == pytest.approx(left, rel=1.1e-4, abs=0.0)
+    last = 10.0 ** (-4 - digits + 1)
+    assert flip.printed - flip.printed_inside == pytest.approx(last, rel=1e-3, abs=0.0)
+    assert 0.0 <= flip.printed - flip.at <= 1.001 * last
+
+
+def counted(number: str, flow: str) -> str:
+    """TUBES with a liquid of constant properties and the given number of tubes: Re = 4 m/(π d_i μ N)."""
+    constants = (
+        "constants: {density: 1000 kg/m^3, viscosity: 0.001 Pa s, conductivity: 0.6 W/(m K),"
+        ' heat capacity: "4200 J/(kg K)"}'
+    )
+    body = TUBES.replace("fluid: water,", f"fluid: {{{constants}, source: test}}, phase: liquid,")
+    return body.replace("value: 40,", f"value: {number},").replace("value: 6 kg/s", f"value: {flow}")
+
+
+@pytest.mark.usefixtures("without_other_methods")
+def test_a_whole_number_flips_at_the_very_next_one_though_the_search_steps_farther(tmp_path: Path) -> None:
+    """By hand Re = 10 000 at N = 10.5: the search looks at 10 and then at 12 tubes."""
+    flow = 10.5 * 1e4 * math.pi * 0.016 * 0.001 / 4.0
+    solved = solved_of(tmp_path, counted("2", f"{flow!r} kg/s"))
+    assert solved.flips is not None
+    flip = one(solved.flips, CRITERION, "N")
+    assert (flip.printed_inside, flip.printed) == (10.0, 11.0)
+
+
+@pytest.mark.usefixtures("without_other_methods")
+def test_a_mean_number_flips_between_whole_ones(tmp_path: Path) -> None:
+    flow = 10.37 * 1e4 * math.pi * 0.016 * 0.001 / 4.0
+    solved = solved_of(tmp_path, counted("8.5", f"{flow!r} kg/s"))
+    assert solved.flips is not None
+    assert one(solved.flips, CRITERION, "N").at == pytest.approx(10.37, rel=2e-9)
+
+
+@pytest.mark.usefixtures("without_other_methods")
+def test_a_temperature_difference_is_ranked_by_its_kelvin(tmp_path: Path) -> None:
+    """Counterflow with 45 K and 35 K at the ends: 10/ln(45/35) K between the streams."""
+    given = "      dT_min: {value: 30 K, is: least difference, source: test}\n"
+    body = COOLER.replace("    streams:\n", given + "    streams:\n", 1)
+    found = flips_of(tmp_path, body + "    acceptance: [{that: LMTD >= dT_min, source: test}]\n")
+    flip = one(found, CRITERION, "dT_min")
+    difference = 10.0 / math.log(45.0 / 35.0)
+    assert flip.at == pytest.approx(difference, rel=2e-9)
+    # The printed figure has six digits.
+    assert flip.steps == pytest.approx(difference - 30.0, rel=2e-5)
+    # Verdicts of the engineer stand first, then limits, then what controls.
+    kinds = list(dict.fromkeys(item.kind for item in found.flips))
+    assert kinds == [kind for kind in (CRITERION, LIMIT, METHOD, CONTROLLING) if kind in kinds]
+    assert kinds[:2] == [CRITERION, LIMIT]
+
+
+@pytest.mark.usefixtures("without_other_methods")
+def test_of_a_figure_below_zero_change_and_tolerance_count_by_its_size(tmp_path: Path) -> None:
+    given = "      M_min: {value: -0.2, is: least margin, source: test, tolerance: 10 %}\n"
+    body = COOLER.replace("    streams:\n", given + "    streams:\n", 1)
+    solved = solved_of(tmp_path, body + "    acceptance: [{that: area_margin >= M_min, source: test}]\n")
+    assert solved.flips is not None
+    flip = one(solved.flips, CRITERION, "M_min")
+    moved = solved.base.results["area_margin"].value + 0.2
+    # The printed figure has six digits.
+    assert flip.tolerances == pytest.approx(moved / 0.02, rel=1e-4)
+    assert flip.steps == pytest.approx(100.0 * moved / 0.2, rel=1e-4)
+
+
 # --- every line of every example ----------------------------------------------------------------------
 
 
