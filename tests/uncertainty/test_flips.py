@@ -609,6 +609,60 @@ def test_of_a_figure_below_zero_change_and_tolerance_count_by_its_size(tmp_path:
     assert flip.steps == pytest.approx(100.0 * moved / 0.2, rel=1e-4)
 
 
+@pytest.mark.parametrize(
+    ("criterion", "symbol", "printed", "inside"),
+    [
+        # A coefficient at its limit is not above it: the limit itself flips, and no figure beyond is needed.
+        ("h inner film service > 1000 W/(m^2 K)", "h_1", 1000.0, 1000.01),
+        ("h outer film service < 900 W/(m^2 K)", "h_2", 900.0, 899.999),
+        # At the limit already: ten digits tell the first figure below.
+        ("h inner film service >= 2000 W/(m^2 K)", "h_1", 1999.999999, 2000.0),
+        # Only without a deposit is the unit as good as clean; a two-thousandth of it is near enough beside.
+        ("cleanliness >= 1", "R_f", 0.0, 1e-7),
+    ],
+)
+def test_a_flip_at_a_round_figure_is_printed_as_that_figure(
+    tmp_path: Path, criterion: str, symbol: str, printed: float, inside: float
+) -> None:
+    found = flips_of(tmp_path, with_criteria(criterion))
+    flip = one(found, CRITERION, symbol)
+    assert (flip.printed, flip.printed_inside) == (printed, inside)
+    assert found.unsettled == ()
+
+
+def test_a_change_of_temperature_is_the_difference_of_what_is_printed(tmp_path: Path) -> None:
+    """By hand 20 °C + 14 000 W/m² · 2.825e-3 m² K/W = 59.55 °C from 80.1 °C; 80.1 + 273.15 − 273.15 is not 80.1."""
+    body = with_criteria("heat_flux_service >= 14000 W/m^2").replace("80 degC", "80.1 degC")
+    flip = one(flips_of(tmp_path, body), CRITERION, "T_1")
+    assert (flip.printed, flip.printed_inside, flip.change) == (59.5499, 59.55, -20.5501)
+
+
+@pytest.mark.usefixtures("without_other_methods")
+def test_where_a_duty_ends_only_its_own_limit_flips(tmp_path: Path) -> None:
+    """A hot stream that is not cooled is none, at 75 °C and at 90 °C. Beyond, the duty and with it the margin of area are
+    below zero: a figure without a record flips no criterion, whose flip lies on the other side."""
+    body = COOLER.replace(", outlet: T_co", "").replace("T_ho: {value: 60", "T_ho: {value: 75")
+    body = "".join(line for line in body.splitlines(keepends=True) if "T_co:" not in line)
+    body = body.replace("N: {value: 120", "N: {value: 400")
+    # Constant properties: no other limit is nearer.
+    constants = (
+        "constants: {density: 1000 kg/m^3, viscosity: 0.001 Pa s, conductivity: 0.6 W/(m K),"
+        ' heat capacity: "4190 J/(kg K)"}'
+    )
+    body = body.replace("fluid: water,", f"fluid: {{{constants}, source: test}},")
+    solved = solved_of(tmp_path, body + "    acceptance: [{that: area_margin >= 0, source: test}]\n")
+    assert solved.flips is not None
+    for symbol, printed, inside in (("T_hi", 75.0, 75.0001), ("T_ho", 90.0, 89.9999)):
+        flip = one(solved.flips, LIMIT, symbol)
+        assert (flip.id, flip.level, flip.becomes) == ("duty / ends / hot stream", "stop", "outside")
+        assert (flip.printed, flip.printed_inside) == (printed, inside)
+        check_flip(solved.chain, flip)
+    margin = one(solved.flips, CRITERION, "T_ho")
+    assert margin.at < 308.15
+    check_flip(solved.chain, margin)
+    assert not [item for item in solved.flips.of_kind(CRITERION) if item.input.symbol == "T_hi"]
+
+
 # --- every line of every example ----------------------------------------------------------------------
 
 
