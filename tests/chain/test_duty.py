@@ -677,3 +677,221 @@ def test_a_margin_that_no_unit_has_is_a_caution_that_names_the_slip(tmp_path: Pa
     ]
     assert found[0].value == 1.0 + figure(answer, "area_margin") > 3.0
     assert "kg/h in place of kg/s" in found[0].because
+
+
+# --- where the limits of a duty lie -------------------------------------------------------------------
+
+
+def states(answer, name: str) -> set[str]:
+    """What both conditions say of a check."""
+    return {check.state for check in answer.base.checks if check.id == name}
+
+
+@pytest.mark.parametrize(
+    ("error", "caution", "range_"),
+    [
+        (0.0499, "within", "within"),
+        (0.0501, "outside", "within"),
+        (-0.0501, "outside", "within"),
+        (0.0999, "outside", "within"),
+        (0.1001, "outside", "outside"),
+        (-0.1001, "outside", "outside"),
+    ],
+)
+def test_heat_balances_close_within_five_and_ten_per_cent(
+    tmp_path: Path, error: float, caution: str, range_: str
+) -> None:
+    """By hand: (Q_h − Q_c)/((Q_h + Q_c)/2) = e with Q_c = Q_h·(2 − e)/(2 + e), by the heat capacity of the cold stream."""
+    heat = 6.93 * 3810.0 * 26.2 * (2.0 - error) / (2.0 + error)
+    answer = solved(tmp_path, cold_outlet=", outlet: T_co", cold_cp=f"{heat / (6.3 * 26.0)!r} J/(kg K)")
+    assert figure(answer, "closure") == pytest.approx(error, rel=1e-9)
+    assert states(answer, "duty / heat balance / closure caution") == {caution}
+    assert states(answer, "duty / heat balance / closure range") == {range_}
+
+
+@pytest.mark.parametrize(
+    ("part", "caution", "range_"),
+    [
+        (1.0499, "within", "within"),
+        (1.0501, "outside", "within"),
+        (0.9499, "outside", "within"),
+        (1.0999, "outside", "within"),
+        (1.1001, "outside", "outside"),
+        (0.8999, "outside", "outside"),
+    ],
+)
+def test_a_stated_area_is_that_of_its_geometry_within_five_and_ten_per_cent(
+    tmp_path: Path, part: float, caution: str, range_: str
+) -> None:
+    area = part * np.pi * 0.020002 * 600.0
+    answer = solved(tmp_path, shells=f"  installed area: {{value: {area!r} m^2, source: s}}\n")
+    assert states(answer, "duty / area / closely stated") == {caution}
+    assert states(answer, "duty / area / stated") == {range_}
+
+
+@pytest.mark.parametrize(("part", "state"), [(1.001, "within"), (0.999, "outside")])
+def test_the_installed_area_carries_the_duty_or_does_not(tmp_path: Path, part: float, state: str) -> None:
+    """The films are stated: the area needed stays, and the installed one goes with the length."""
+    needed = figure(solved(tmp_path), "area_service") / (np.pi * 0.020002)
+    answer = solved(tmp_path, length=f"{part * needed!r} m")
+    assert figure(answer, "area_margin") == pytest.approx(part - 1.0, abs=1e-12)
+    assert states(answer, "duty / area / margin") == {state}
+
+
+@pytest.mark.parametrize(
+    ("figures", "stopped"),
+    [
+        ({"T_ho": "65.6 degC"}, {"hot stream", "cold stream"}),
+        ({"T_hi": "10 degC", "hot_outlet": ""}, {"hot above cold", "hot stream", "cold stream"}),
+        ({"cold_outlet": ", outlet: T_co", "T_co": "10 degC"}, {"cold stream"}),
+        ({"cold_flow": "0 kg/s"}, {"cold flow"}),
+        ({"hot_flow": "0 kg/s", "hot_outlet": ""}, {"hot flow"}),
+    ],
+)
+def test_a_duty_without_heat_or_flow_is_no_number(
+    tmp_path: Path, figures: dict[str, str], stopped: set[str]
+) -> None:
+    """Equal temperatures transfer nothing; a stream is there only with a flow."""
+    with pytest.raises(Faults) as told:
+        solved(tmp_path, **figures)
+    assert {fault.code for fault in told.value.faults} == {"limit-stops"}
+    text = str(told.value)
+    assert stopped <= {name for name in (*stopped, "flow") if f"duty / ends / {name}" in text}
+
+
+@pytest.mark.parametrize(
+    ("temperature", "between", "mean"),
+    [
+        (52.5 + 6.54, "within", "within"),
+        (52.5 - 6.54, "within", "within"),
+        (52.5 + 6.56, "within", "outside"),
+        (52.5 - 6.56, "within", "outside"),
+        (65.7, "outside", "outside"),
+        (39.3, "outside", "outside"),
+    ],
+)
+def test_a_stated_mean_lies_between_its_ends_and_near_their_middle(
+    tmp_path: Path, temperature: float, between: str, mean: str
+) -> None:
+    """65.6 °C and 39.4 °C: the middle is 52.5 °C, and a quarter of the way is 6.55 K."""
+    text = FILE.format(**{**KREITH, "length": "900 m"})
+    stated = f"{{fluid: warm, temperature: {{value: {temperature!r} degC, source: s}}, flow"
+    assert text.count("{fluid: warm, flow") == 1
+    path = tmp_path / "rt-1.yaml"
+    path.write_text(text.replace("{fluid: warm, flow", stated), encoding="utf-8")
+    answer = solve_file(path)
+    found = {check.id: (check.level, check.state) for check in answer.base.checks}
+    assert found["duty / ends / hot mean between the ends"] == ("range", between)
+    assert found["duty / ends / hot mean"] == ("caution", mean)
+    assert "duty / ends / cold mean" not in found
+
+
+def test_one_tube_pass_in_a_shell_is_not_said_to_be_an_odd_number(tmp_path: Path) -> None:
+    """The caution of the passes tells it already."""
+    path = tmp_path / "rt-1.yaml"
+    text = FILE.format(**{**KREITH, "arrangement": "shell and tube"})
+    passes = "length: L, tubes: {value: 12, source: s}, passes: {value: %d, source: s}}"
+    said = {}
+    for number in (1, 3):
+        path.write_text(text.replace("length: L}", passes % number), encoding="utf-8")
+        answer = solve_file(path, for_record=False)
+        said[number] = [item.id for item in answer.base.assumptions if item.id == "duty/odd passes"]
+    assert said == {1: [], 3: ["duty/odd passes"]}
+
+
+def test_a_duty_that_follows_from_neither_stream_is_told(tmp_path: Path) -> None:
+    """Without the hot flow neither stream has a heat: the cold one has an open outlet."""
+    text = FILE.format(**KREITH)
+    old = "warm, flow: m_h,"
+    assert text.count(old) == 1
+    path = tmp_path / "rt-1.yaml"
+    path.write_text(text.replace(old, "warm,"), encoding="utf-8")
+    with pytest.raises(Faults) as told:
+        solve_file(path)
+    assert [(fault.code, fault.message) for fault in told.value.faults] == [
+        ("duty-incomplete", "the duty follows from neither stream")
+    ]
+
+
+@pytest.mark.parametrize(
+    ("specified", "fouling", "stopped"),
+    [
+        ("cleanliness: {value: 100 %, source: s}", "", "fouling / specified fouling"),
+        ("excess surface: {value: 0 %, source: s}", "", "fouling / specified fouling"),
+        # Clean 1/U is 2/1136 m² K/W and a hundredth of it is 1.8e-5: a deposit of 2e-5 beside it is more already.
+        ("excess surface: {value: 1 %, source: s}", "0.00002 m^2 K/W", "fouling / resistance"),
+        ("excess surface: {value: 2 %, source: s}", "0.00002 m^2 K/W", ""),
+    ],
+)
+def test_a_specified_fouling_adds_a_resistance(
+    tmp_path: Path, specified: str, fouling: str, stopped: str
+) -> None:
+    text = FILE.format(**{**KREITH, "length": "900 m"})
+    deposit = "  - {name: deposit, kind: fouling, resistance: R_f, on: outside}\n"
+    assert text.count(deposit) == 1
+    lines = deposit.replace(", resistance: R_f", "")
+    if fouling:
+        lines += deposit.replace("deposit,", "stated deposit,").replace(
+            "R_f", f"{{value: {fouling}, source: s}}"
+        )
+    path = tmp_path / "rt-1.yaml"
+    path.write_text(
+        f"{text.replace(deposit, lines)}fouling specified as: {{{specified}}}\n", encoding="utf-8"
+    )
+    if not stopped:
+        answer = solve_file(path)
+        # By hand: S·(1/U_clean) less what is stated.
+        expected = 0.02 / figure(answer, "U_clean") - 2e-5
+        assert figure(answer, "R deposit service") == pytest.approx(expected, rel=1e-9)
+        return
+    with pytest.raises(Faults) as told:
+        solve_file(path)
+    assert {fault.code for fault in told.value.faults} == {"limit-stops"} and stopped in str(told.value)
+
+
+@pytest.mark.parametrize(
+    ("inner", "outer", "stopped"),
+    [
+        ("40 %", "59.9 %", "fouling / split"),
+        ("40 %", "60.1 %", "fouling / split"),
+        ("-10 %", "110 %", "fouling / share"),
+        ("110 %", "-10 %", "fouling / share"),
+        ("0 %", "100 %", ""),
+    ],
+)
+def test_shares_that_a_case_restates_are_parts_of_one_whole(
+    tmp_path: Path, inner: str, outer: str, stopped: str
+) -> None:
+    text = FILE.format(**{**KREITH, "length": "900 m"})
+    deposit = "  - {name: deposit, kind: fouling, resistance: R_f, on: outside}\n"
+    hot = "coefficient: h, on: outside, stream: hot"
+    for old, new in (
+        (
+            "fluids:\n",
+            "  x_1: {value: 40 %, is: share, source: s}\n  x_2: {value: 60 %, is: share, source: s}\nfluids:\n",
+        ),
+        (deposit, "  - {name: inner deposit, kind: fouling, on: inside}\n"),
+        (
+            "  - {name: outer film",
+            "  - {name: outer deposit, kind: fouling, on: outside}\n  - {name: outer film",
+        ),
+        (hot, hot.replace("outside", "inside")),
+    ):
+        assert text.count(old) == 1
+        text = text.replace(old, new)
+    text += (
+        "fouling specified as: {cleanliness: {value: 80 %, source: s}, split: {inside: x_1, outside: x_2}}\n"
+        f"cases: {{moved: {{x_1: {{value: {inner}, source: s}}, x_2: {{value: {outer}, source: s}}}}}}\n"
+    )
+    path = tmp_path / "rt-1.yaml"
+    path.write_text(text, encoding="utf-8")
+    if stopped:
+        with pytest.raises(Faults) as told:
+            solve_file(path)
+        assert {fault.code for fault in told.value.faults} == {"limit-stops"} and stopped in str(told.value)
+        return
+    results = solve_file(path).cases[1].results
+    # By hand: all of (1/0.8 − 1)/U_clean lies outside.
+    assert results["R inner deposit service"].value == 0.0
+    outside = 0.25 / results["U_clean"].value
+    assert results["R outer deposit service"].value == pytest.approx(outside, rel=1e-9)
