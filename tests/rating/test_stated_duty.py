@@ -333,3 +333,21 @@ def test_a_stated_duty_is_what_fouling_takes_from(tmp_path: Path, against: str, 
     assert answer.over_time is not None and answer.over_time.interval is not None
     assert answer.rating is not None and not answer.rating.unanswered
     assert "the heat is what U and area give between both saturation temperatures" in record_text(answer)
+
+
+def test_a_saturated_stream_has_no_temperature_at_its_end(tmp_path: Path) -> None:
+    text = HEATER.replace("hot: {stream: steam}", "hot: {stream: steam, inlet: T_co, outlet: T_ci}")
+    assert text != HEATER
+    with pytest.raises(Faults) as told:
+        solved(tmp_path, text)
+    (fault,) = told.value.faults
+    assert fault.code == "duty-incomplete"
+    assert fault.message == "the hot stream `steam` is saturated and has a temperature at its end"
+
+
+@pytest.mark.parametrize("text", [HEATER, EVAPORATOR])
+def test_passes_are_not_asked_of_where_a_stream_keeps_its_temperature(tmp_path: Path, text: str) -> None:
+    """Against one temperature the mean difference is that of any arrangement (common practice)."""
+    single = text.replace("passes: {value: 2,", "passes: {value: 1,")
+    assert single != text
+    assert checks_of(solved(tmp_path, single), "duty / arrangement / tube passes") == []
