@@ -524,10 +524,8 @@ class _Analysis:
     def _report_unknown(self, criterion: Criterion, results: Mapping[str, Result]) -> None:
         name = shown(criterion.result)
         start = next((start for start in LATER if criterion.result.startswith(start)), "")
-        later = [
-            name for name in LATER if name not in STARTS and name not in results and self._is_asked(name)
-        ]
-        known = (*results, *later)
+        whole = [one for one in LATER if one not in STARTS and one not in results]
+        known = (*results, *(one for one in whole if self._is_asked(one)))
         message = f"there is no result `{name}`"
         if start and self._is_asked(criterion.result):
             message = f"`{name}` was not found: it is later than the time looked at, or there is none"

@@ -51,9 +51,7 @@ def end_states(
     any_solution = next(iter(solutions.values()))
     size = any_solution.converged.size
     figures = {
-        temperature: np.concatenate(
-            [np.broadcast_to(any_solution.figure(step).ravel(), (size,)) for step in steps]
-        )
+        temperature: np.concatenate([any_solution.row(step) for step in steps])
         for temperature, steps in _end_steps(chain).items()
     }
     twice = {name: np.tile(value, 2) if np.ndim(value) else value for name, value in inputs.items()}

@@ -10,6 +10,7 @@ import numpy as np
 from calcbook.chain.duty import duty_step
 from calcbook.chain.ends import PLACES, has_ends
 from calcbook.chain.latent import PHASE_CHANGE
+from calcbook.chain.named_results import BY_SIZE
 from calcbook.chain.types import CONDITIONS, SERVICE, Chain
 from calcbook.formulas import Relation, evaluate, parse_expression, partial
 
@@ -58,7 +59,7 @@ def measured(chain: Chain, name: str) -> Measured | None:
         parts = {f"U_{condition}": (condition, chain.results["U"]) for condition in CONDITIONS}
         return Measured(name, parse_expression(JOINED[name]), parts)
     step = _step(chain, name)
-    relation = SIZE if name.startswith(("heat_flow_", "heat_flux_")) else PLAIN
+    relation = SIZE if name.startswith(BY_SIZE) else PLAIN
     return Measured(name, relation, {"y": step}) if step is not None else None
 
 

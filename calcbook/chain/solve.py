@@ -66,6 +66,10 @@ class Solution:
         """One figure at every sample; 0-d where it does not vary."""
         return np.asarray(self.values[name], dtype=float)
 
+    def row(self, name: str) -> Array:
+        """One figure of every sample of one row, also where it does not vary."""
+        return np.broadcast_to(self.figure(name).ravel(), (self.converged.size,))
+
     def number(self, name: str) -> float:
         """One figure of a single record."""
         return float(np.asarray(self.values[name]).ravel()[0])

@@ -66,7 +66,7 @@ class AtSamples:
         found: dict[str, ResultFigures] = {}
         service = solutions[SERVICE]
         if self.names & set(OF_PARTS):
-            areas = areas_of_parts(self.chain, inputs, service, thorough=False)
+            areas = areas_of_parts(self.chain, inputs, service)
             installed = service.figure(self.chain.results["area installed"])
             for name, values, kind, title in results_of_parts(areas, installed):
                 found[name] = ResultFigures(np.where(case_of == 0, values, np.nan), kind, title)

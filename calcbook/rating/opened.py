@@ -69,11 +69,7 @@ def _opened(
         name: replace(stream, temperature=None) if name in open_streams else stream
         for name, stream in calculation.streams.items()
     }
-    # What a stream carries between ends that it keeps goes before a stated heat flow: both need not agree.
-    has_balance = any(
-        name not in sides and side.has_ends and not side.open_end and before.streams[side.stream].mass_flow
-        for name, side in opened.items()
-    )
+    kept = [side for name, side in opened.items() if name not in sides]
     changed = replace(
         calculation,
         duty=replace(
@@ -81,7 +77,7 @@ def _opened(
             hot=opened["hot"],
             cold=opened["cold"],
             parts=1,
-            heat_flow=None if has_balance or len(sides) == len(opened) else duty.heat_flow,
+            heat_flow=duty.heat_flow if kept and not _has_balance(before, kept) else None,
         ),
         # Its figures are taken from the calculation itself; what it is counted against may be gone here.
         cleaning=None,
@@ -95,6 +91,14 @@ def _opened(
     if open_streams and not open_figures:
         return None
     return replace(chain, constants={**chain.constants, **held}, open_figures=open_figures)
+
+
+def _has_balance(chain: Chain, sides: Sequence[DutySide]) -> bool:
+    """Whether a side carries a heat of its own between stated ends: that goes before a stated heat flow, with which it
+    need not agree."""
+    return any(
+        side.has_ends and not side.open_end and bool(chain.streams[side.stream].mass_flow) for side in sides
+    )
 
 
 def _with_inlet(chain: Chain, case: CaseOutcome, name: str, side: DutySide) -> DutySide:

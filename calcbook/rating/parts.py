@@ -34,12 +34,10 @@ def parts(solved: Solved) -> Parts | None:
     return _laid_out(solved, solutions, ends, duty.parts)
 
 
-def areas_of_parts(
-    chain: Chain, inputs: Mapping[str, Array], service: Solution, thorough: bool = True
-) -> dict[str, Array]:
+def areas_of_parts(chain: Chain, inputs: Mapping[str, Array], service: Solution) -> dict[str, Array]:
     """The area summed over the parts, by condition, for every sample of a solution in one row.
 
-    ``inputs`` leave nothing open. Not a number where the circuit of a part does not close.
+    ``inputs`` leave nothing open. Not a number where the circuit of a part does not close in a few passes.
     """
     duty, size = chain.calculation.duty, service.converged.size
     assert duty is not None
@@ -47,7 +45,7 @@ def areas_of_parts(
     area = chain.results["area required"]
     found = {}
     for condition in CONDITIONS:
-        solution = solve(cut, given, condition, keep=(area,), thorough=thorough)
+        solution = solve(cut, given, condition, keep=(area,), thorough=False)
         rows = np.where(solution.converged, solution.figure(area), np.nan)
         found[condition] = rows.reshape(duty.parts, size).sum(axis=0)
     return found
@@ -61,7 +59,7 @@ def _cut(
     assert duty is not None
     ends = {name: _ends(whole, service, name, duty.parts) for name in duty.sides}
     heat = whole.results["duty"]
-    figures = {heat: np.tile(_row(service, heat) / duty.parts, duty.parts)}
+    figures = {heat: np.tile(service.row(heat) / duty.parts, duty.parts)}
     for name, (inlets, outlets) in ends.items():
         figures |= _side(whole, name, inlets, outlets)
     given = {
@@ -69,10 +67,6 @@ def _cut(
         for name, value in inputs.items()
     }
     return *with_figures(whole, given, figures), ends
-
-
-def _row(solution: Solution, name: str) -> Array:
-    return np.broadcast_to(solution.figure(name).ravel(), (solution.converged.size,))
 
 
 def with_parts(solved: Solved, along: Parts) -> Solved:
@@ -126,7 +120,7 @@ def _percent(ratio: float) -> str:
 def _ends(whole: Chain, service: Solution, name: str, count: int) -> tuple[Array, Array]:
     """Inlet and outlet temperatures of a side in every part, numbered from the hot inlet; part after part, the samples
     of each in one row."""
-    inlet, outlet = (_row(service, whole.results[f"T {name} {end}"]) for end in ("inlet", "outlet"))
+    inlet, outlet = (service.row(whole.results[f"T {name} {end}"]) for end in ("inlet", "outlet"))
     borders = inlet + (outlet - inlet) * np.linspace(0.0, 1.0, count + 1)[:, np.newaxis]
     duty = whole.calculation.duty
     if name == "cold" and duty is not None and duty.arrangement == "counterflow":

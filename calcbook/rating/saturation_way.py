@@ -101,14 +101,13 @@ class Way:
     @classmethod
     def of(cls, chain: Chain, throttle: Throttle, inputs: Mapping[str, Array], service: Solution) -> Way:
         """The way of the throttled stream from where it and the other one stand in a solution in service."""
-        duty, size = chain.calculation.duty, service.converged.size
+        duty = chain.calculation.duty
         assert duty is not None
         stream = chain.streams[duty.sides[throttle.side].stream]
-        stated, end = (
-            np.broadcast_to(service.figure(name).ravel(), (size,))
-            for name in (stream.temperature, chain.results[f"T {throttle.other} outlet"])
+        stated = service.row(stream.temperature)
+        return cls(
+            chain, stream, inputs, stated, service.row(chain.results[f"T {throttle.other} outlet"]) - stated
         )
-        return cls(chain, stream, inputs, stated, end - stated)
 
     def at(self, parts: Array, samples: Array) -> dict[str, Array]:
         """The figure that gives the stream its temperature at parts of the way of some samples; NaN where there is none."""

@@ -10,6 +10,7 @@ import math
 from collections.abc import Iterable, Sequence
 
 from calcbook.calcfile.calculation import Report
+from calcbook.chain.analysis import is_found_later
 from calcbook.quantities import QuantityKind, in_unit, si_unit
 from calcbook.record.blocks import Block, Bullets, Code, Heading, Paragraph, Table
 from calcbook.record.numbers import fixed, number, percent, report_unit, unit_text, with_unit
@@ -199,9 +200,12 @@ def _is_seen(attribution: Attribution) -> bool:
 
 def _parts(attribution: Attribution, comparison: Comparison) -> list[Block]:
     if not attribution.has_parts:
-        return [
-            Paragraph("This result does not exist in every mixture of the two revisions, so it has no parts.")
-        ]
+        why = (
+            "is found from a solved calculation, and not in mixtures of the two revisions"
+            if is_found_later(attribution.result)
+            else "does not exist in every mixture of the two revisions"
+        )
+        return [Paragraph(f"This result {why}, so it has no parts.")]
     if not attribution.parts:
         return [Paragraph("No change can move this result.")]
     scale = Scale(attribution.kind, comparison.new.calculation.report, (attribution.was, attribution.now))

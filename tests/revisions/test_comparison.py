@@ -236,3 +236,15 @@ def test_a_verdict_that_a_probability_decides_shows_it() -> None:
     assert (flip.was, flip.now) == ("criterion not met", "criterion met")
     assert re.search(r"0\.08\d+ against 0; holds with 8\d\.\d\d %, 95 % is asked for", flip.figure_was)
     assert "95 % is asked for" in flip.figure_now
+
+
+def test_what_is_found_from_a_solved_calculation_has_no_parts_and_says_why() -> None:
+    """The margin of a kettle falls with its duty alone: by hand (1 + M)·Q is what the unit reaches."""
+    text = example("kr-801")
+    sides = example_side(text), example_side(with_value(text, "Q_c5", "2150 kW"))
+    margin, control = compare(*sides, ("area_margin", "pressure_turned_down")).attributions
+    assert (1.0 + margin.was) * 2000.0 == pytest.approx((1.0 + margin.now) * 2150.0, rel=1e-12)
+    assert [part.title.startswith("Q_c5") for part in margin.parts] == [True]
+    assert control.now > control.was and not control.has_parts
+    page = page_of(compare(*sides, ("pressure_turned_down",)))
+    assert "is found from a solved calculation, and not in mixtures of the two revisions" in page
