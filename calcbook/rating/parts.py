@@ -51,6 +51,12 @@ def areas_of_parts(chain: Chain, inputs: Mapping[str, Array], service: Solution)
     return found
 
 
+def what_parts_take(chain: Chain) -> set[str]:
+    """The ids of the figures of a solution in service that its parts and their results are made from."""
+    ends = {f"T {name} {end}" for name in ("hot", "cold") for end in ("inlet", "outlet")}
+    return {chain.results[name] for name in ("duty", "area installed", *ends)}
+
+
 def _cut(
     whole: Chain, inputs: Mapping[str, Array], service: Solution
 ) -> tuple[Chain, dict[str, Array], dict[str, tuple[Array, Array]]]:

@@ -10,14 +10,16 @@ import numpy as np
 
 from calcbook.calcfile.calculation import Criterion
 from calcbook.calcfile.uncertainty import USUAL_COVERAGE, UncertaintyText
+from calcbook.chain.along import OF_PARTS
 from calcbook.chain.analysis import is_found_later
 from calcbook.chain.completing import completed
+from calcbook.chain.criteria import criterion_margin, is_met
 from calcbook.chain.ends import EndState, closed_ends, end_slopes, end_states
 from calcbook.chain.factors import with_factors
-from calcbook.chain.measured import Measured, measured
+from calcbook.chain.measured import PLAIN, Measured, measured
 from calcbook.chain.outcome import CaseOutcome, CriterionResult, Result, Solved
 from calcbook.chain.sensitivity import derivatives
-from calcbook.chain.types import Chain, Layer, OpenItem
+from calcbook.chain.types import SERVICE, Chain, Layer, OpenItem
 from calcbook.chain.uncertainty_outcome import (
     Budget,
     BudgetRow,
@@ -404,7 +406,17 @@ class _Assessment:
         """
         statements: list[Statement] = []
         texts: dict[str, tuple[str, bool, float]] = {}
-        not_sampled = [item.text for item in self.chain.calculation.acceptance if is_found_later(item.result)]
+        not_sampled = []
+        for number, item in enumerate(self.chain.calculation.acceptance, 1):
+            if not is_found_later(item.result):
+                continue
+            summed = self._of_parts(f"criterion {number}", item)
+            if summed is None:
+                not_sampled.append(item.text)
+                continue
+            statements.append(summed)
+            margin_now = criterion_margin(item, self._named(item.result).value, summed.limit)
+            texts[summed.id] = (item.text, bool(is_met(item, margin_now)), item.probability)
         for row in self.case.criteria:
             item = self.chain.calculation.criterion(row.id)
             result = measured(self.chain, item.result)
@@ -421,6 +433,20 @@ class _Assessment:
             statements.append(Statement(POSITIVE_MARGIN, margin, ">", 0.0))
             texts[POSITIVE_MARGIN] = (POSITIVE_MARGIN, self._named(MARGIN).value > 0.0, math.nan)
         return statements, texts, tuple(not_sampled)
+
+    def _of_parts(self, name: str, item: Criterion) -> Statement | None:
+        """A criterion over the area summed over parts, which samples show in the case that has it; None for another."""
+        if item.result not in OF_PARTS or item.result not in self.case.results:
+            return None
+        step = self._limit_step(item.limit.symbol)
+        if step:
+            limit = self.case.solutions[SERVICE].number(step)
+        else:
+            assert item.limit.quantity is not None, "a limit is a symbol or a quantity"
+            limit = item.limit.quantity.value
+        return Statement(
+            name, Measured(item.result, PLAIN, {"y": (SERVICE, item.result)}), item.operator, limit, step
+        )
 
     def _limit_step(self, symbol: str) -> str:
         if not symbol:

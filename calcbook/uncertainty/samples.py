@@ -9,6 +9,7 @@ from typing import ClassVar
 import numpy as np
 
 from calcbook.chain.about_state import about_state
+from calcbook.chain.along import OF_PARTS
 from calcbook.chain.checks import NOT_EVALUABLE, OUTSIDE, check_states
 from calcbook.chain.completing import completed
 from calcbook.chain.ends import OPEN_END, PLACES, end_states, has_ends
@@ -16,8 +17,9 @@ from calcbook.chain.findings import ends_of, figures_to_hold, has_phase_to_keep
 from calcbook.chain.measured import Measured, condition_of
 from calcbook.chain.samples import Samples, mark_derived, mark_directions, mark_walls
 from calcbook.chain.solve import UNKNOWNS, Solution, closed, conditions_of, solve_both
-from calcbook.chain.types import CONDITIONS, Branch, Chain, ChainCheck, Group, Layer, StreamState
+from calcbook.chain.types import CONDITIONS, SERVICE, Branch, Chain, ChainCheck, Group, Layer, StreamState
 from calcbook.properties import FluidAtPressure
+from calcbook.rating.parts import areas_of_parts, results_of_parts, what_parts_take
 from calcbook.uncertainty.figures import has_floor
 from calcbook.uncertainty.sampling import Sampled
 
@@ -297,6 +299,9 @@ class ChainModel:
             *(name for group in (chain.inner, chain.outer) for name in _bulks(group)),
         }
         self.looks_at_ends = any(one.place for one in self.limits) or self.states != self.conditions
+        self.sums_parts = any(statement.result.name in OF_PARTS for statement in statements)
+        if self.sums_parts:
+            self.keep |= what_parts_take(chain)
         if self.looks_at_ends:
             self.keep |= {UNKNOWNS, *(bound for name in chain.streams for _, bound in ends_of(chain, name))}
 
@@ -337,7 +342,15 @@ class ChainModel:
         for state in self.states:
             if state in places:
                 possible &= places[state].converged
-        return self._sampled(solutions, places, possible, size)
+        summed = self._summed(whole, solutions) if self.sums_parts else {}
+        return self._sampled(solutions, places, possible, size, summed)
+
+    def _summed(self, whole: Mapping[str, Array], solutions: Mapping[str, Solution]) -> dict[str, Array]:
+        """The results of the areas summed over the parts of the duty, by name."""
+        service = solutions[SERVICE]
+        areas = areas_of_parts(self.chain, whole, service)
+        installed = service.row(self.chain.results["area installed"])
+        return {name: values for name, values, _, _ in results_of_parts(areas, installed)}
 
     def _closed(self, whole: Mapping[str, Array], size: int) -> dict[str, Solution]:
         """The solutions of the conditions that are wanted; few samples of both are closed in one call.
@@ -361,6 +374,7 @@ class ChainModel:
         ends: Mapping[str, Solution],
         possible: Array,
         size: int,
+        summed: Mapping[str, Array],
     ) -> Sampled:
         marks: dict[str, Array] = {}
         any_outside = np.zeros(size, dtype=bool)
@@ -374,6 +388,8 @@ class ChainModel:
             name = mark_of(one)
             marks[name] = marks[name] | outside if name in marks else outside
         values = {state: solution.values for state, solution in (*solutions.items(), *ends.items())}
+        if summed:
+            values[SERVICE] = {**values[SERVICE], **summed}
         outputs = {
             one.name: np.where(possible, np.broadcast_to(one.value(values), (size,)), np.nan)
             for one in self.results

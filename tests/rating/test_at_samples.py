@@ -119,3 +119,53 @@ def test_a_flow_that_the_control_moves_cannot_be_swept(tmp_path: Path) -> None:
         recorded(tmp_path, COOLER + sweep)
     (fault,) = told.value.faults
     assert fault.code == "result-unknown" and "cannot be swept" in fault.message
+
+
+# --- how often a criterion on the summed area holds ------------------------------------------------------
+
+
+def chances(folder: Path, text: str) -> dict[str, float]:
+    """Of every criterion the share of the samples in which it holds."""
+    return {row.that: row.reached for row in solved(folder, text).base.criteria}
+
+
+def with_criteria(text: str, limits: dict[str, float]) -> str:
+    rows = "".join(
+        f"  - {{that: {name} >= {limit!r}, source: s, probability: 50 %}}\n" for name, limit in limits.items()
+    )
+    return text + f"acceptance:\n{rows}uncertainty: {{of: [area_margin]}}\n"
+
+
+def test_the_samples_show_how_often_the_summed_margin_holds(tmp_path: Path) -> None:
+    """The duty alone is uncertain and normal: the margin falls with it, so that the share is that of a normal variable
+    below the duty at which a file of its own has the limit."""
+    text = PARTED.replace("duty:\n", "duty:\n  heat flow: Q_d\n").replace(
+        "givens:\n", "givens:\n  Q_d: {value: %s, is: duty, source: s, tolerance: {standard: 5 %%}}\n", 1
+    )
+    text = without_accuracy(text)
+    whole = solved(tmp_path, PARTED).base.results["duty"].value
+    # 0.4 standard uncertainties above the stated duty: Phi(0.4) = 0.6554 (tables of the normal distribution).
+    limits = solved(tmp_path, text % f"{1.02 * whole!r} W").base.results
+    stated = text % f"{whole!r} W"
+    margins = {name: limits[name].value for name in ("area_margin", "area_margin of parts")}
+    found = chances(tmp_path, with_criteria(stated, margins))
+    assert len(found) == 2
+    for that, share in found.items():
+        # Three standard deviations of 50 000 samples, five blocks, the fewest that are drawn.
+        assert share == pytest.approx(0.6554, abs=0.0064), that
+
+
+def without_accuracy(text: str) -> str:
+    """The unit with a stated coefficient in place of the method, whose accuracy would be sampled with the rest."""
+    method = "situation: inside-tube, method factor: {value: 0.9, source: house rule}"
+    assert method in text and ", tolerance: 20 %}" in text
+    return text.replace(method, "coefficient: {value: 6000 W/(m^2 K), source: s}, on: inside").replace(
+        ", tolerance: 20 %}", "}"
+    )
+
+
+def test_a_margin_summed_over_parts_is_not_sampled_where_the_file_has_none(tmp_path: Path) -> None:
+    text = COOLER + "acceptance:\n  - {that: area_margin of parts >= 0, source: s, probability: 90 %}\n"
+    with pytest.raises(Faults) as told:
+        solved(tmp_path, text)
+    assert any("only where the file has `parts:`" in fault.message for fault in told.value.faults)
