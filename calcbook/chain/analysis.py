@@ -17,6 +17,7 @@ from calcbook.chain.cross_check import cross_check
 from calcbook.chain.duty import OWNER as DUTY
 from calcbook.chain.ends import OPEN_END, EndState, closed_ends, end_checks, end_states
 from calcbook.chain.figures import (
+    BY_SIZE,
     ResultFigures,
     allowance_figures,
     interfaces,
@@ -33,6 +34,7 @@ from calcbook.chain.findings import (
     stream_findings,
     wall_checks,
 )
+from calcbook.chain.growth_outcome import CARRIED
 from calcbook.chain.outcome import (
     CaseOutcome,
     CheckResult,
@@ -122,6 +124,7 @@ def judged_later(solved: Solved, collector: Collector) -> Solved:
         return solved
     later = {name: result for name, result in solved.base.results.items() if is_found_once(name)}
     analysis = _Analysis(solved.chain, collector)
+    analysis.never_lost = solved.over_time.duty_words if solved.over_time is not None else ""
     cases = []
     for case in solved.cases:
         keeps = keeps_what_is_found_later(solved.chain, case.name)
@@ -167,6 +170,8 @@ class _Analysis:
         self.open_surfaces: frozenset[str] = frozenset()
         # Results of what the control of the clean unit moves, of the case that is judged.
         self.moved: tuple[str, ...] = ()
+        # Why there is no time at which the duty is lost.
+        self.never_lost = ""
 
     def solved(self) -> Solved | None:
         names = ("", *self.chain.calculation.cases)
@@ -514,6 +519,8 @@ class _Analysis:
         if criterion.result != DUTY_LOST or stated is None:
             return None
         kind = vocabulary()["service time"]
+        if self.never_lost != CARRIED:
+            return self._not_met(number, criterion, case, solutions, kind, self.never_lost)
         limit = self.limit_of(criterion, kind, solutions[SERVICE])
         until = solutions[SERVICE].number(self.chain.in_service["until"])
         if limit is None or not until >= float(limit):
@@ -571,7 +578,7 @@ class _Analysis:
                 return None
             given = self.chain.calculation.givens.get(value.symbol)
             if given is not None:
-                if self._read_limit(given.value.quantity, kind, value.place) is None:
+                if self._read_limit(given.value.quantity, kind, criterion) is None:
                     return None
                 if kind.name == "ratio" and not given.value.is_share(criterion.result, self.judging):
                     return None
@@ -579,12 +586,15 @@ class _Analysis:
         assert value.quantity is not None, "a limit is a symbol or a quantity"
         if kind.name == "ratio" and not value.is_share(criterion.result, self.judging):
             return None
-        limit = self._read_limit(value.quantity, kind, value.place)
+        limit = self._read_limit(value.quantity, kind, criterion)
         return np.asarray(limit) if limit is not None else None
 
-    def _read_limit(self, quantity: Quantity | None, kind: QuantityKind, place: Place) -> float | None:
-        """The SI value of a limit, read as the quantity that it limits; None after a fault."""
+    def _read_limit(
+        self, quantity: Quantity | None, kind: QuantityKind, criterion: Criterion
+    ) -> float | None:
+        """The SI value of a criterion's limit, read as the quantity that it limits; None after a fault."""
         assert quantity is not None, "a figure of the file has a value here"
+        place = criterion.limit.place
         if kind.reading == "absolute" and quantity.reading == "gauge":
             self.judging.add(
                 "unit-dimension",
@@ -599,11 +609,11 @@ class _Analysis:
         except QuantityFault as error:
             self.judging.take([error.at(place)])
             return None
-        if kind.name in ("heat flow", "heat flux") and limit < 0.0:
+        if criterion.result.startswith(BY_SIZE) and limit < 0.0:
             self.judging.add(
                 "quantity-negative",
                 place,
-                f"a {kind.name} is a result by its size, whichever way the heat flows",
+                f"`{shown(criterion.result)}` is a result by its size, whichever way it points",
                 found=shown(quantity.text),
                 expected="a limit that is not below zero",
             )

@@ -29,6 +29,16 @@ IMPLIED = {
 }
 
 
+# Results that are told by their size, by how their names start: a limit on one must not be met because heat flows
+# inwards, or because the other stream carries too little.
+BY_SIZE = ("heat_flux", "heat_flow", "closure")
+
+
+def by_size(name: str, figures: Array) -> Array:
+    """The figures of a result as they are told by its name."""
+    return np.abs(figures) if name.startswith(BY_SIZE) else figures
+
+
 @dataclass(frozen=True, slots=True)
 class ResultFigures:
     """A named result at every sample, in SI; NaN where there is none."""
@@ -44,7 +54,7 @@ def result_figures(chain: Chain, solutions: Mapping[str, Solution]) -> dict[str,
     results: dict[str, ResultFigures] = {}
 
     def put(name: str, values: Array, kind: str, title: str) -> None:
-        results[name] = ResultFigures(values, kinds[kind], title)
+        results[name] = ResultFigures(by_size(name, values), kinds[kind], title)
 
     table = chain.results
     at_mean = ", at the mean temperatures" if chain.calculation.duty is not None else ""
@@ -72,16 +82,15 @@ def result_figures(chain: Chain, solutions: Mapping[str, Solution]) -> dict[str,
         put(f"UA_{condition}", solution.figure(table["UA"]), "conductance", f"conductance, {condition}")
         if "heat flux" in table:
             # Of a rated unit they are not its duty: the difference of the means is no mean difference of the ends.
-            # By their size: a criterion on a flux must not be met because heat flows inwards.
             put(
                 f"heat_flux_{condition}",
-                np.abs(solution.figure(table["heat flux"])),
+                solution.figure(table["heat flux"]),
                 "heat flux",
                 f"heat flux, {condition}{at_mean}",
             )
             put(
                 f"heat_flow_{condition}",
-                np.abs(solution.figure(table["heat flow"])),
+                solution.figure(table["heat flow"]),
                 "heat flow",
                 f"heat flow, {condition}{at_mean}",
             )

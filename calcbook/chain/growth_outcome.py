@@ -69,6 +69,10 @@ class Interval(NamedTuple):
     closed_form: ClosedForm | None
 
 
+# Why there is no time at which the duty is lost, where that is good news.
+CARRIED = "the duty is carried to the end of the table"
+
+
 class OverTime(NamedTuple):
     """The unit over the time since its cleaning.
 

@@ -9,8 +9,8 @@ import numpy as np
 
 from calcbook.chain.duty import duty_step
 from calcbook.chain.ends import PLACES, has_ends
+from calcbook.chain.figures import BY_SIZE
 from calcbook.chain.latent import PHASE_CHANGE
-from calcbook.chain.named_results import BY_SIZE
 from calcbook.chain.types import CONDITIONS, SERVICE, Chain
 from calcbook.formulas import Relation, evaluate, parse_expression, partial
 

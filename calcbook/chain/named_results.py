@@ -8,7 +8,7 @@ from collections.abc import Mapping
 import numpy as np
 
 from calcbook.chain.duty import DUTY_RESULTS
-from calcbook.chain.figures import interfaces
+from calcbook.chain.figures import by_size, interfaces
 from calcbook.chain.pressure import drops, evaluate_pressure_drops
 from calcbook.chain.solve import Solution
 from calcbook.chain.types import CLEAN, CONDITIONS, SERVICE, Chain
@@ -16,8 +16,6 @@ from calcbook.chain.types import CLEAN, CONDITIONS, SERVICE, Chain
 Array = np.ndarray
 RATIOS = ("cleanliness", "excess_surface")
 _WITH_CONDITION = re.compile(r"(U|UA|heat_flux|heat_flow)_(clean|service)(?: on (.+))?")
-# Results that are told by their size, whichever way the heat flows.
-BY_SIZE = ("heat_flux", "heat_flow")
 _OF_TERM = re.compile(r"(T|h|R|dT|phase_change) (.+) (clean|service)")
 _OF_STREAM = re.compile(r"(speed|Re) (.+)")
 _PRESSURE_DROP = re.compile(r"dp (.+)_(clean|service)")
@@ -53,14 +51,11 @@ def result_values(chain: Chain, solutions: Mapping[str, Solution], name: str) ->
         return service / clean if name == "cleanliness" else clean / service - 1.0
     if name in DUTY_RESULTS:
         condition, key = DUTY_RESULTS[name]
-        return solutions[condition].figure(chain.results[key]) if key in chain.results else None
+        return _figure(chain, solutions[condition], name, key)
     found = _WITH_CONDITION.fullmatch(name)
     if found is not None:
         key = _IN_TABLE[found[1]] + (f" on {found[3]}" if found[3] else "")
-        if key not in chain.results:
-            return None
-        figures = solutions[found[2]].figure(chain.results[key])
-        return np.abs(figures) if found[1] in BY_SIZE else figures
+        return _figure(chain, solutions[found[2]], name, key)
     found = _OF_TERM.fullmatch(name)
     if found is not None and found[1] == "T":
         return dict(interfaces(chain, solutions[found[3]])).get(found[2])
@@ -71,6 +66,10 @@ def result_values(chain: Chain, solutions: Mapping[str, Solution], name: str) ->
     if found is not None:
         return _pressure_drop(chain, solutions[found[2]], found[1])
     return _of_stream(chain, solutions[SERVICE], name)
+
+
+def _figure(chain: Chain, solution: Solution, name: str, key: str) -> Array | None:
+    return by_size(name, solution.figure(chain.results[key])) if key in chain.results else None
 
 
 def _pressure_drop(chain: Chain, solution: Solution, stream: str) -> Array | None:

@@ -13,7 +13,7 @@ from dataclasses import replace
 import numpy as np
 
 from calcbook.calcfile.in_service import CLEANED_UNIT, DUTY
-from calcbook.chain.growth_outcome import ClosedForm, Interval, OverTime, TimeRow
+from calcbook.chain.growth_outcome import CARRIED, ClosedForm, Interval, OverTime, TimeRow
 from calcbook.chain.in_service import loss_against
 from calcbook.chain.outcome import Result, Solved
 from calcbook.chain.pressure import drops, evaluate_pressure_drops
@@ -235,7 +235,7 @@ def _duty_lost(course: _Course) -> tuple[float, str]:
         return NAN, "the cleaned unit does not carry the duty"
     found = crossing(course.margin_at, 0.0, course.until)
     if math.isnan(found):
-        return NAN, "the duty is carried to the end of the table"
+        return NAN, CARRIED
     return found, ""
 
 

@@ -6,6 +6,7 @@ from collections.abc import Sequence
 from dataclasses import replace
 
 from calcbook.calcfile.calculation import Duty
+from calcbook.chain.ends import has_ends
 from calcbook.chain.outcome import CaseOutcome, Result, Solved
 from calcbook.chain.rating_outcome import OF_DAY_ONE, DayOne, Rating, in_case
 from calcbook.chain.types import Chain, OpenItem
@@ -13,6 +14,9 @@ from calcbook.library import vocabulary
 from calcbook.rating.day_one import day_one
 from calcbook.rating.ledger import ledger
 from calcbook.rating.parts import parts, with_parts
+
+# Results of a circuit at the mean temperatures that are not those of a unit along which they change.
+AT_MEANS = ("heat_flow_", "heat_flux_")
 
 
 def rated(solved: Solved) -> Solved:
@@ -29,7 +33,7 @@ def rated(solved: Solved) -> Solved:
     told = [
         replace(
             case,
-            open_items=(*case.open_items, *_open_items(rating, case.name)),
+            open_items=(*case.open_items, *_open_items(rating, case.name), *_at_means(chain, case)),
             results={**case.results, **_results(rating, case.name, chain.calculation.duty)},
         )
         for case in solved.cases
@@ -49,6 +53,24 @@ def _open_items(rating: Rating, case: str) -> list[OpenItem]:
         return []
     where = in_case(case)
     return [OpenItem(f"day one{where}", "check", f"Day one has no answer{where}: {reason}.")]
+
+
+def _at_means(chain: Chain, case: CaseOutcome) -> list[OpenItem]:
+    """That a criterion on the heat flow or the flux of a unit judges what is not its heat: one item each, in the base
+    case."""
+    duty = chain.calculation.duty
+    if case.name or duty is None or not has_ends(chain):
+        return []
+    return [
+        OpenItem(
+            f"criterion {number} / mean temperatures",
+            "check",
+            f"criterion {number}, {item.text}, judges U times the difference of the mean temperatures: the unit transfers"
+            " heat_reached_service or its duty, and its flux is another one at each end.",
+        )
+        for number, item in enumerate(chain.calculation.acceptance, 1)
+        if item.result.startswith(AT_MEANS)
+    ]
 
 
 def _results(rating: Rating, case: str, duty: Duty) -> dict[str, Result]:

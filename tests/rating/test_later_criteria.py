@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import re
 from pathlib import Path
 
 import pytest
@@ -14,6 +15,7 @@ from calcbook.faults import Faults
 from calcbook.interface import record_text, solve_file
 from calcbook.record import digest_of, results_data, software_of
 
+CALCS = Path(__file__).resolve().parents[2] / "calcs"
 LOST = "time_until_duty_lost"
 COOLER = WITH_TABLE.partition("time in service:")[0]
 
@@ -169,3 +171,45 @@ def test_the_mean_of_places_along_the_unit_is_judged(tmp_path: Path) -> None:
         assert item.value == mean and item.met is met
         # It is a result of the base case alone.
         assert [case.name for case in solution.cases if case.criteria] == [""]
+
+
+def test_a_duty_that_the_cleaned_unit_does_not_carry_is_lost_at_once(tmp_path: Path) -> None:
+    """A margin below zero clean: there is no time until it is lost, and that is no good news."""
+    text = (CALCS / "hr-821.yaml").read_text(encoding="utf-8")
+    short = text.replace("h_o:     {value: 4300 W", "h_o:     {value: 700 W")
+    assert short != text
+    (tmp_path / "hr-821.yaml").write_text(short, encoding="utf-8")
+    answer = solve_file(tmp_path / "hr-821.yaml", for_record=False)
+    assert answer.base.results["area_margin_clean"].value < 0.0
+    (row,) = [item for item in answer.base.criteria if item.that.startswith("time_until_duty_lost")]
+    assert not row.met and row.words == "the cleaned unit does not carry the duty"
+
+
+def test_a_duty_that_is_not_stated_cannot_be_kept(tmp_path: Path) -> None:
+    text = (CALCS / "hr-821.yaml").read_text(encoding="utf-8")
+    lines = [line for line in text.splitlines() if not line.startswith("  T_ho:")]
+    open_ended = re.sub(r", outlet: T_ho", "", "\n".join(lines)) + "\n"
+    open_ended = re.sub(r"  - \{that: area_margin [^\n]*\n", "", open_ended)
+    assert open_ended.count("T_ho") == 0
+    (tmp_path / "hr-821.yaml").write_text(open_ended, encoding="utf-8")
+    answer = solve_file(tmp_path / "hr-821.yaml", for_record=False)
+    assert "area_margin" not in answer.base.results
+    (row,) = [item for item in answer.base.criteria if item.that.startswith("time_until_duty_lost")]
+    assert not row.met and row.words == "no duty is stated that could be lost"
+
+
+def test_the_title_says_which_criterion_is_not_judged_in_a_case(tmp_path: Path) -> None:
+    """The area of parts is that of the base case: with 50 tubes less the unit is short, and nobody has looked."""
+    text = (CALCS / "wc-105.yaml").read_text(encoding="utf-8")
+    start = text.index("acceptance:")
+    end = text.index("\n\n", start)
+    text = text[:start] + "acceptance:\n  - {that: area_margin of parts >= 0, source: s}" + text[end:]
+    (tmp_path / "wc-105.yaml").write_text(
+        text + "\ncases:\n  thin:\n    N: {value: 50, source: s}\n", encoding="utf-8"
+    )
+    answer = solve_file(tmp_path / "wc-105.yaml", for_record=False)
+    assert answer.cases[1].results["area_margin"].value < 0.0
+    title = next(line for line in record_text(answer).splitlines() if line.startswith("| Criteria |"))
+    assert title == (
+        "| Criteria | every criterion met where it is judged; not judged in case thin: area_margin of parts |"
+    )

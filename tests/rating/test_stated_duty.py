@@ -103,18 +103,20 @@ def test_without_a_stated_duty_it_is_what_the_unit_reaches(tmp_path: Path) -> No
 
 
 def test_heat_balances_stand_beside_a_stated_duty(tmp_path: Path) -> None:
-    """Kern's rule of a rating: the heat of either stream is the duty; closure errors by hand, (Q − Q_d)/Q_d."""
+    """Kern's rule of a rating: the heat of either stream is the duty; closure errors by hand, |Q − Q_d|/Q_d."""
     before = figures(solved(tmp_path, COOLER))
     stated = 1.02 * before["duty"]
     answer = solved(tmp_path, with_heat(COOLER, stated))
     found = figures(answer)
     assert found["duty"] == stated
-    both = before["closure"]
-    assert found["closure_hot"] == pytest.approx((1.0 + both / 2.0) / 1.02 - 1.0, rel=1e-9)
-    assert found["closure_cold"] == pytest.approx((1.0 - both / 2.0) / 1.02 - 1.0, rel=1e-9)
+    both = before["closure"]  # the hot stream carries more
+    assert found["closure_hot"] == pytest.approx(1.0 - (1.0 + both / 2.0) / 1.02, rel=1e-9)
+    assert found["closure_cold"] == pytest.approx(1.0 - (1.0 - both / 2.0) / 1.02, rel=1e-9)
     assert found["area_service"] == pytest.approx(1.02 * before["area_service"], rel=1e-12)
     assert "closure" not in found
-    assert "off it by heat balance: of the hot stream -" in record_text(answer).replace("−", "-")
+    assert "off it by heat balance: of the hot stream 1.79 %, of the cold stream 2.13 %" in record_text(
+        answer
+    )
 
 
 @pytest.mark.parametrize(
@@ -351,3 +353,29 @@ def test_passes_are_not_asked_of_where_a_stream_keeps_its_temperature(tmp_path: 
     single = text.replace("passes: {value: 2,", "passes: {value: 1,")
     assert single != text
     assert checks_of(solved(tmp_path, single), "duty / arrangement / tube passes") == []
+
+
+# --- what a criterion on a unit judges -------------------------------------------------------------------
+
+
+def test_a_closure_is_judged_by_its_size(tmp_path: Path) -> None:
+    """The cold stream carries 4 % more than the hot one: (Q_h − Q_c) over their mean is −4 % (by hand)."""
+    stated = figures(solved(tmp_path, COOLER))["closure"]
+    answer = solved(tmp_path, COOLER.replace("value: 20.5 kg/s", "value: 21.4 kg/s"))
+    assert answer.base.solutions["service"].number(answer.chain.results["closure"]) < 0.0
+    ratio = 21.4 / 20.5 * (1.0 - stated / 2.0) / (1.0 + stated / 2.0)
+    assert figures(answer)["closure"] == pytest.approx(2.0 * (ratio - 1.0) / (ratio + 1.0), rel=1e-9)
+    text = COOLER.replace("value: 20.5 kg/s", "value: 21.4 kg/s")
+    judged = solved(tmp_path, text + "acceptance:\n  - {that: closure <= 2 %, source: s}\n")
+    assert [row.met for row in judged.base.criteria] == [False]
+
+
+def test_a_criterion_on_the_heat_of_the_mean_temperatures_is_an_open_item(tmp_path: Path) -> None:
+    """U·A times the difference of the means is more than the heat of the unit; saturated on both sides it is that."""
+    criterion = "acceptance:\n  - {that: heat_flow_service >= 100 kW, source: s}\n"
+    answer = solved(tmp_path, HEATER + criterion)
+    assert figures(answer)["heat_flow_service"] > 1.02 * figures(answer)["heat_reached_service"]
+    (item,) = [one for one in answer.base.open_items if one.id == "criterion 1 / mean temperatures"]
+    assert "judges U times the difference of the mean temperatures" in item.text
+    both = solved(tmp_path, EVAPORATOR + criterion)
+    assert not [one for one in both.base.open_items if one.id.endswith("mean temperatures")]

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from calcbook.chain.analysis import is_found_once, keeps_what_is_found_later
 from calcbook.chain.flips_outcome import CRITERION
 from calcbook.chain.named_results import pressure_drop_of
 from calcbook.chain.outcome import CriterionResult
@@ -101,3 +102,14 @@ def _margin(item: CriterionResult, page: Page) -> str:
     if item.limit and item.kind.unit != "1":
         relative = f"; {percent(item.margin / abs(item.limit))} of the limit"
     return margin + relative
+
+
+def not_judged(page: Page) -> str:
+    """The criteria over what is found once for the calculation, and the cases that they say nothing of, in words."""
+    later = [item.result for item in page.calculation.acceptance if is_found_once(item.result)]
+    cases = [
+        case_name(case.name)
+        for case in page.solved.cases
+        if not keeps_what_is_found_later(page.chain, case.name)
+    ]
+    return f"not judged in case {', '.join(cases)}: {', '.join(later)}" if later and cases else ""

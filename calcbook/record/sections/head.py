@@ -15,7 +15,7 @@ from calcbook.record.numbers import (
     percent,
 )
 from calcbook.record.page import Page, case_name, counted
-from calcbook.record.sections.criteria import CRITERION_COLUMNS, criterion_row
+from calcbook.record.sections.criteria import CRITERION_COLUMNS, criterion_row, not_judged
 from calcbook.record.sections.duty import brief_rows
 from calcbook.record.sections.growth import time_brief_rows
 from calcbook.record.sections.survey import survey_brief_rows
@@ -80,7 +80,10 @@ def _criteria_words(page: Page) -> str:
     if not judged:
         return "none is stated"
     failed = [f"{item.id} not met, case {case_name(item.case)}" for item in judged if not item.met]
-    return "; ".join(failed) or "every criterion met in every case"
+    if failed:
+        return "; ".join(failed)
+    left = not_judged(page)
+    return f"every criterion met where it is judged; {left}" if left else "every criterion met in every case"
 
 
 # --- result in brief --------------------------------------------------------------------------------

@@ -5,7 +5,6 @@ from __future__ import annotations
 import math
 from collections.abc import Callable, Sequence
 
-from calcbook.chain.analysis import is_found_once, keeps_what_is_found_later
 from calcbook.chain.findings import lacks_freezing_point, lacks_vapour_pressure
 from calcbook.chain.outcome import CriterionResult, CrossRow, Solved
 from calcbook.chain.outside import stands_in_the_open
@@ -13,6 +12,7 @@ from calcbook.chain.types import CONDITIONS, SERVICE
 from calcbook.record.blocks import Block, Bullets, Heading, Paragraph, Quote, Table
 from calcbook.record.numbers import celsius, in_report_unit, percent
 from calcbook.record.page import HOUSE_METHOD, Page, case_name, counted
+from calcbook.record.sections.criteria import not_judged
 from calcbook.record.sections.head import confirmation
 from calcbook.record.sections.survey import survey_cautions
 from calcbook.record.sections.validity import SMALLEST_RESIDUAL, residual, verdict
@@ -180,9 +180,7 @@ def _criteria(page: Page) -> str:
     failed = [item for item in items if not item.met]
     words = f"; not met: {_named(failed)}" if failed else ""
     words = f"{len(items) - len(failed)} of {counted(len(items), 'criterion', 'criteria')} met{words}."
-    return " ".join(
-        (words, *_without_probability(page, items), *_failed_on_day_one(page), *_not_judged(page))
-    )
+    return " ".join((words, *_without_probability(page, items), *_failed_on_day_one(page), *_left_out(page)))
 
 
 def _without_probability(page: Page, items: Sequence[CriterionResult]) -> list[str]:
@@ -207,15 +205,9 @@ def _failed_on_day_one(page: Page) -> list[str]:
     return [f"Not met on day one: {'; '.join(failed)}."] if failed else []
 
 
-def _not_judged(page: Page) -> list[str]:
-    """The criteria over what is found once for the calculation, and the cases that they say nothing of."""
-    later = [item.result for item in page.calculation.acceptance if is_found_once(item.result)]
-    cases = [
-        case_name(case.name)
-        for case in page.solved.cases
-        if not keeps_what_is_found_later(page.chain, case.name)
-    ]
-    return [f"Not judged in case {', '.join(cases)}: {', '.join(later)}."] if later and cases else []
+def _left_out(page: Page) -> list[str]:
+    left = not_judged(page)
+    return [f"{left[0].upper()}{left[1:]}."] if left else []
 
 
 def _cards(page: Page) -> str:
