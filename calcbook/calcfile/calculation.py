@@ -208,10 +208,20 @@ class Duty:
         return {"hot": self.hot, "cold": self.cold}
 
     @property
+    def has_ends(self) -> bool:
+        """Whether anything changes along the unit: not so between two streams that keep their temperatures."""
+        return self.hot.has_ends or self.cold.has_ends
+
+    @property
+    def is_beside_one_temperature(self) -> bool:
+        """Whether a stream keeps its temperature, beside which every arrangement has one mean difference."""
+        return not (self.hot.has_ends and self.cold.has_ends)
+
+    @property
     def can_be_cut(self) -> bool:
         """Whether parts follow each other along the unit: flows that pass end to end, or one that keeps its temperature."""
-        keep = [not side.has_ends for side in self.sides.values()]
-        return not all(keep) and (any(keep) or self.arrangement in CUT_ARRANGEMENTS)
+        follow = self.is_beside_one_temperature or self.arrangement in CUT_ARRANGEMENTS
+        return self.has_ends and follow
 
     def names(self, stream: str) -> bool:
         """Whether a stream stands on one of the sides."""

@@ -102,15 +102,15 @@ def _check(reader: Reader, duty: Duty, fields: Fields) -> None:
             "no installed area: that of the geometry is of the open tubes",
         )
     if "parts" in fields and duty.arrangement and not duty.can_be_cut:
-        alike = not any(side.has_ends for side in duty.sides.values())
-        _refuse(
-            reader,
-            fields.place_of("parts"),
-            "between two streams that keep their temperatures every part is like the whole"
-            if alike
-            else f"{duty.arrangement} cannot be cut into parts that follow each other",
-            "no parts" if alike else f"{' or '.join(CUT_ARRANGEMENTS)}, or no parts",
+        message, expected = (
+            (
+                f"{duty.arrangement} cannot be cut into parts that follow each other",
+                f"{' or '.join(CUT_ARRANGEMENTS)}, or no parts",
+            )
+            if duty.has_ends
+            else ("between two streams that keep their temperatures every part is like the whole", "no parts")
         )
+        _refuse(reader, fields.place_of("parts"), message, expected)
 
 
 def _refuse(reader: Reader, place: Place, message: str, expected: str) -> None:

@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Callable, Iterable, Iterator, Mapping
 from dataclasses import dataclass, replace
+from functools import partial
 
 import numpy as np
 
@@ -124,12 +125,12 @@ def judged_later(solved: Solved, collector: Collector) -> Solved:
         return solved
     later = {name: result for name, result in solved.base.results.items() if is_found_once(name)}
     analysis = _Analysis(solved.chain, collector)
-    analysis.never_lost = solved.over_time.duty_words if solved.over_time is not None else ""
+    never_lost = solved.over_time.duty_words if solved.over_time is not None else ""
     cases = []
     for case in solved.cases:
         keeps = keeps_what_is_found_later(solved.chain, case.name)
         results = {**case.results, **(later if keeps else {})}
-        found = analysis.criteria_found_later(case.name, results, case.solutions, keeps)
+        found = analysis.criteria_found_later(case.name, results, case.solutions, keeps, never_lost)
         criteria = sorted((*case.criteria, *found), key=lambda item: int(item.id.removeprefix("criterion ")))
         cases.append(replace(case, criteria=tuple(criteria)))
     collector.take(analysis.judging)
@@ -168,10 +169,6 @@ class _Analysis:
         self.results: dict[str, Result] = {}
         # Surfaces at ends of the case at hand at which the circuit does not close.
         self.open_surfaces: frozenset[str] = frozenset()
-        # Results of what the control of the clean unit moves, of the case that is judged.
-        self.moved: tuple[str, ...] = ()
-        # Why there is no time at which the duty is lost.
-        self.never_lost = ""
 
     def solved(self) -> Solved | None:
         names = ("", *self.chain.calculation.cases)
@@ -411,17 +408,23 @@ class _Analysis:
         return self._judged(wanted, case, results, solutions, self._without_value)
 
     def criteria_found_later(
-        self, case: str, results: Mapping[str, Result], solutions: Mapping[str, Solution], keeps: bool
+        self,
+        case: str,
+        results: Mapping[str, Result],
+        solutions: Mapping[str, Solution],
+        keeps: bool,
+        never_lost: str,
     ) -> tuple[CriterionResult, ...]:
         """The criteria of a case over results that are found later; where it does not keep what is found of the base
-        case, those over its own."""
+        case, those over its own. ``never_lost`` says why there is no time at which the duty is lost."""
         wanted = {
             number: criterion
             for number, criterion in self._numbered()
             if self._is_later(criterion) and (keeps or not is_found_once(criterion.result))
         }
-        self.moved = tuple(name for name in OF_DAY_ONE if name in results)
-        return self._judged(wanted, case, results, solutions, self._not_there)
+        moved = " and ".join(name for name in OF_DAY_ONE if name in results)
+        without = partial(self._not_there, f"the control moves {moved}" if moved else NO_STATE, never_lost)
+        return self._judged(wanted, case, results, solutions, without)
 
     def _numbered(self) -> Iterator[tuple[int, Criterion]]:
         return enumerate(self.chain.calculation.acceptance, 1)
@@ -502,25 +505,35 @@ class _Analysis:
         return _told_in_words(number, criterion, case, kind, float(limit), False, words)
 
     def _not_there(
-        self, number: int, criterion: Criterion, case: str, solutions: Mapping[str, Solution]
+        self,
+        no_state: str,
+        never_lost: str,
+        number: int,
+        criterion: Criterion,
+        case: str,
+        solutions: Mapping[str, Solution],
     ) -> CriterionResult | None:
-        """A criterion over a state of day one that is not there, or over a duty that is not lost."""
+        """A criterion over a state of day one that is not there, or over a duty that is not lost; in words why."""
         if is_found_once(criterion.result):
-            return self._not_lost(number, criterion, case, solutions)
+            return self._not_lost(never_lost, number, criterion, case, solutions)
         kind = vocabulary()[OF_DAY_ONE[criterion.result][0]]
-        words = f"the control moves {' and '.join(self.moved)}" if self.moved else NO_STATE
-        return self._not_met(number, criterion, case, solutions, kind, words)
+        return self._not_met(number, criterion, case, solutions, kind, no_state)
 
     def _not_lost(
-        self, number: int, criterion: Criterion, case: str, solutions: Mapping[str, Solution]
+        self,
+        never_lost: str,
+        number: int,
+        criterion: Criterion,
+        case: str,
+        solutions: Mapping[str, Solution],
     ) -> CriterionResult | None:
         """The criterion over a duty that is not lost, where the time that was looked at settles it; else None."""
         stated = self.chain.calculation.time_in_service
         if criterion.result != DUTY_LOST or stated is None:
             return None
         kind = vocabulary()["service time"]
-        if self.never_lost != CARRIED:
-            return self._not_met(number, criterion, case, solutions, kind, self.never_lost)
+        if never_lost != CARRIED:
+            return self._not_met(number, criterion, case, solutions, kind, never_lost)
         limit = self.limit_of(criterion, kind, solutions[SERVICE])
         until = solutions[SERVICE].number(self.chain.in_service["until"])
         if limit is None or not until >= float(limit):

@@ -416,11 +416,6 @@ class DutyLayout:
     def _inlets(self) -> dict[str, str]:
         return {"T_hi": self.results["T hot inlet"], "T_ci": self.results["T cold inlet"]}
 
-    @property
-    def _keep_both(self) -> bool:
-        """Whether both streams keep their temperatures."""
-        return len(self.isothermal) == len(SIDES)
-
     def _end_checks(self) -> None:
         """The temperatures must fall along the hot stream, rise along the cold one, and start hot above cold."""
         self._check(
@@ -497,7 +492,7 @@ class DutyLayout:
             "overall coefficient",
         )
         self._reached(overall, area)
-        if not self._keep_both:
+        if self.duty.has_ends:
             self._second_way(area)
 
     def _installed(self, area: str) -> str:
@@ -515,7 +510,7 @@ class DutyLayout:
     def _changes_phase(self, heat: str) -> None:
         """The flow of every saturated stream that the heat needs, beside the stated one."""
         for name in self.isothermal:
-            state, mark = self.states[name], f" {name}" if self._keep_both else ""
+            state, mark = self.states[name], "" if self.duty.has_ends else f" {name}"
             self.results[f"{FLOW_NEEDED}{mark}"] = flow_needed(self.scope, state, heat, OWNER)
             if state.mass_flow:
                 changed = changed_part(self.scope, state, heat, OWNER)
@@ -587,7 +582,7 @@ class DutyLayout:
     def _reached(self, overall: str, area: str) -> None:
         """The heat that the installed area transfers from the same inlets, by effectiveness; between two streams that keep
         their temperatures by their difference."""
-        if self._keep_both:
+        if not self.duty.has_ends:
             figures = {"U": overall, "A_inst": area, **self._inlets()}
             self.results["heat reached"] = self._step(
                 "heat reached",

@@ -33,8 +33,7 @@ class EndState:
 def has_ends(chain: Chain) -> bool:
     """Whether the circuit can be closed at the ends of a duty as well."""
     duty = chain.calculation.duty
-    changes = duty is not None and any(side.has_ends for side in duty.sides.values())
-    return changes and chain.has_temperatures
+    return duty is not None and duty.has_ends and chain.has_temperatures
 
 
 def end_states(

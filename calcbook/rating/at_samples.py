@@ -15,11 +15,10 @@ from calcbook.chain.figures import ResultFigures
 from calcbook.chain.outcome import CaseOutcome, Solved
 from calcbook.chain.rating_outcome import FLOW, OF_DAY_ONE, PRESSURE, PRESSURE_RESULT, TEMPERATURE_RESULT
 from calcbook.chain.solve import Solution
-from calcbook.chain.specified import SPECIFIED_FIGURES
 from calcbook.chain.types import SERVICE, Chain
 from calcbook.library import vocabulary
-from calcbook.rating.opened import open_chain
-from calcbook.rating.parts import areas_of_parts, results_of_parts
+from calcbook.rating.opened import holds_of_case, open_chain
+from calcbook.rating.parts import parts_at_samples
 from calcbook.rating.saturation_way import Way
 from calcbook.rating.turning_down import throttle_of
 
@@ -37,13 +36,8 @@ def names_at_samples(solved: Solved) -> frozenset[str]:
 
 def _moved(chain: Chain) -> tuple[str, ...]:
     """The names of what the control moves where that is a saturation, and nothing of its way was found for a case."""
-    duty = chain.calculation.duty
-    assert duty is not None
-    is_found = any(side.open_end == "inlet" for side in duty.sides.values()) or any(
-        item.id in SPECIFIED_FIGURES for item in chain.open_figures
-    )
     what = throttle_of(chain).what
-    if what == FLOW or is_found:
+    if what == FLOW or holds_of_case(chain):
         return ()
     return (PRESSURE_RESULT, TEMPERATURE_RESULT) if what == PRESSURE else (TEMPERATURE_RESULT,)
 
@@ -66,9 +60,7 @@ class AtSamples:
         found: dict[str, ResultFigures] = {}
         service = solutions[SERVICE]
         if self.names & set(OF_PARTS):
-            areas = areas_of_parts(self.chain, inputs, service)
-            installed = service.figure(self.chain.results["area installed"])
-            for name, values, kind, title in results_of_parts(areas, installed):
+            for name, values, kind, title in parts_at_samples(self.chain, inputs, service):
                 found[name] = ResultFigures(np.where(case_of == 0, values, np.nan), kind, title)
         if self.names & set(OF_DAY_ONE):
             found |= self._control(inputs, service)

@@ -131,7 +131,7 @@ def _heat_of(solved: Solved) -> tuple[Chain, str, str]:
     duty = chain.calculation.duty
     if duty is None:
         return chain, chain.results.get("heat flow", ""), "at the stated bulk temperatures"
-    if not any(side.has_ends for side in duty.sides.values()):
+    if not duty.has_ends:
         return chain, chain.results["heat reached"], "between both saturation temperatures"
     if "duty" in chain.results:
         opened = open_chain(solved.chain, solved.base, "hot", "cold")

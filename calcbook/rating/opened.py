@@ -28,10 +28,9 @@ def open_chain(chain: Chain, case: CaseOutcome, *sides: str, condition: str = SE
     duty = chain.calculation.duty
     assert duty is not None
     with_inlets = {name: _with_inlet(chain, case, name, side) for name, side in duty.sides.items()}
-    fouling = _specified_fouling(chain, case)
-    built = (_opened, sides, case.name if fouling or with_inlets != duty.sides else "")
+    built = (_opened, sides, case.name if holds_of_case(chain) else "")
     if built not in chain.memory:
-        chain.memory[built] = _opened(chain, with_inlets, sides, fouling)
+        chain.memory[built] = _opened(chain, with_inlets, sides, _specified_fouling(chain, case))
     opened: Chain | None = chain.memory[built]
     if opened is None:
         return None
@@ -39,6 +38,14 @@ def open_chain(chain: Chain, case: CaseOutcome, *sides: str, condition: str = SE
         opened.memory[_found_in, condition] = _found_in(opened, condition)
     found: Chain = opened.memory[_found_in, condition]
     return found
+
+
+def holds_of_case(chain: Chain) -> bool:
+    """Whether an opened calculation holds what was found in one case: an open inlet, a specified fouling."""
+    duty = chain.calculation.duty
+    assert duty is not None
+    has_inlet = any(side.open_end == "inlet" for side in duty.sides.values())
+    return has_inlet or chain.calculation.fouling_specified is not None
 
 
 def _found_in(chain: Chain, condition: str) -> Chain:

@@ -18,6 +18,7 @@ from calcbook.library import vocabulary
 from calcbook.quantities import QuantityKind
 
 Array = np.ndarray
+PartResult = tuple[str, Array, QuantityKind, str]
 
 
 def parts(solved: Solved) -> Parts | None:
@@ -34,8 +35,8 @@ def parts(solved: Solved) -> Parts | None:
     return _laid_out(solved, solutions, ends, duty.parts)
 
 
-def areas_of_parts(chain: Chain, inputs: Mapping[str, Array], service: Solution) -> dict[str, Array]:
-    """The area summed over the parts, by condition, for every sample of a solution in one row.
+def parts_at_samples(chain: Chain, inputs: Mapping[str, Array], service: Solution) -> Iterator[PartResult]:
+    """The results of the areas summed over the parts at every sample of a solution in one row.
 
     ``inputs`` leave nothing open. Not a number where the circuit of a part does not close in a few passes.
     """
@@ -48,7 +49,7 @@ def areas_of_parts(chain: Chain, inputs: Mapping[str, Array], service: Solution)
         solution = solve(cut, given, condition, keep=(area,), thorough=False)
         rows = np.where(solution.converged, solution.figure(area), np.nan)
         found[condition] = rows.reshape(duty.parts, size).sum(axis=0)
-    return found
+    return _results(found, service.row(chain.results["area installed"]))
 
 
 def what_parts_take(chain: Chain) -> set[str]:
@@ -86,7 +87,7 @@ def with_parts(solved: Solved, along: Parts) -> Solved:
     areas = {condition: np.asarray(area) for condition, area in along.area.items()}
     results = {
         name: Result(name, float(value), kind, title)
-        for name, value, kind, title in results_of_parts(areas, np.asarray(installed))
+        for name, value, kind, title in _results(areas, np.asarray(installed))
     }
     margin = results[OF_PARTS[2]].value
     items = list(base.open_items)
@@ -95,9 +96,7 @@ def with_parts(solved: Solved, along: Parts) -> Solved:
     return solved.with_base(replace(base, results={**base.results, **results}, open_items=tuple(items)))
 
 
-def results_of_parts(
-    areas: Mapping[str, Array], installed: Array
-) -> Iterator[tuple[str, Array, QuantityKind, str]]:
+def _results(areas: Mapping[str, Array], installed: Array) -> Iterator[PartResult]:
     """Name, values, kind and title of every result that the areas summed over the parts give."""
     area, ratio = vocabulary()["area"], vocabulary()["ratio"]
     summed = "summed over the parts of the duty"

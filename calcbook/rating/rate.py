@@ -58,8 +58,7 @@ def _open_items(rating: Rating, case: str) -> list[OpenItem]:
 def _at_means(chain: Chain, case: CaseOutcome) -> list[OpenItem]:
     """That a criterion on the heat flow or the flux of a unit judges what is not its heat: one item each, in the base
     case."""
-    duty = chain.calculation.duty
-    if case.name or duty is None or not has_ends(chain):
+    if case.name or not has_ends(chain):
         return []
     return [
         OpenItem(

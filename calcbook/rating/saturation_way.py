@@ -24,12 +24,8 @@ Array = np.ndarray
 STEPS, LARGEST_PART = 12, 0.999
 # A saturation temperature is known this well, in K. Where the circuit ends first, that place is halved so often.
 KNOWN, HALVINGS = 1e-9, 20
-# What became of a sample: its place is known, or why it has none.
-FOUND, NOT_CLOSED, NOT_CARRIED, CARRIED_STILL, CARRIED_TO_END, NO_SATURATION = range(6)
-
-
-class NoState(Exception):
-    """Why there is no turned-down state, in words."""
+# What becomes of a sample that has something to spare as it stands: its place is known, or why it has none.
+FOUND, CARRIED_STILL, CARRIED_TO_END, NO_SATURATION = range(4)
 
 
 def spare(
@@ -46,12 +42,11 @@ def spare(
     return np.broadcast_to(found if has_duty else found / stated - 1.0, shape)
 
 
-def must_spare(margin: float, where: str) -> None:
-    """Refuse to look for a state where the clean unit has nothing to spare as it stands."""
+def nothing_to_spare(margin: float, where: str) -> str:
+    """Why there is no state to look for where the clean unit has nothing to spare as it stands; else nothing."""
     if math.isnan(margin):
-        raise NoState(f"the circuit of the clean unit does not close at the duty and {where}")
-    if margin <= 0.0:
-        raise NoState(f"the clean unit does not carry the duty: it is {percent(-margin)} short")
+        return f"the circuit of the clean unit does not close at the duty and {where}"
+    return f"the clean unit does not carry the duty: it is {percent(-margin)} short" if margin <= 0.0 else ""
 
 
 def percent(share: float) -> str:
@@ -69,11 +64,9 @@ class Places(NamedTuple):
     def reason(self, sample: int, throttle: Throttle) -> str:
         """Why a sample has no place, in words."""
         became, what = int(self.became[sample]), throttle.what
-        if became in (NOT_CLOSED, NOT_CARRIED):
-            try:
-                must_spare(float(self.spare[sample]), f"the stated {what}")
-            except NoState as reason:
-                return str(reason)
+        short = nothing_to_spare(float(self.spare[sample]), f"the stated {what}")
+        if short:
+            return short
         if became == CARRIED_STILL:
             return f"the clean unit carries the duty with {percent(1.0 - LARGEST_PART)} of the temperature difference still"
         way = "down" if throttle.way == "turned down" else "up"
@@ -137,11 +130,8 @@ class Way:
         steps = np.linspace(0.0, LARGEST_PART, STEPS + 1)
         table = self.spare(np.tile(steps, size), np.repeat(everyone, len(steps))).reshape(size, -1)
         first = (~(table > 0.0)).argmax(axis=1)
-        became = np.full(size, FOUND)
-        became[(table > 0.0).all(axis=1)] = CARRIED_STILL
-        became[table[:, 0] <= 0.0] = NOT_CARRIED
-        became[np.isnan(table[:, 0])] = NOT_CLOSED
-        active = everyone[became == FOUND]
+        became = np.where((table > 0.0).all(axis=1), CARRIED_STILL, FOUND)
+        active = everyone[(became == FOUND) & (table[:, 0] > 0.0)]
         low, high = steps[first[active] - 1], steps[first[active]]
         closes = ~np.isnan(table[active, first[active]])
         if not closes.all():

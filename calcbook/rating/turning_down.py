@@ -31,7 +31,7 @@ from calcbook.chain.solve import solve
 from calcbook.chain.types import CLEAN, SERVICE, Chain
 from calcbook.chain.variants import with_figures
 from calcbook.rating.opened import open_chain
-from calcbook.rating.saturation_way import NoState, Way, must_spare, percent, spare
+from calcbook.rating.saturation_way import Way, nothing_to_spare, percent, spare
 from calcbook.rating.unit_states import MARGIN, NOTHING, Judged, judged, pressure_of, unit_state
 
 Array = np.ndarray
@@ -50,6 +50,10 @@ class TurnedDown(NamedTuple):
     reason: str
     left: Judged
     throttle: Throttle
+
+
+class NoState(Exception):
+    """Why there is no turned-down state, in words."""
 
 
 def turned_down(chain: Chain, case: CaseOutcome) -> TurnedDown:
@@ -83,11 +87,11 @@ def throttle_of(chain: Chain) -> Throttle:
     """What the control of a unit with a duty moves."""
     duty = chain.calculation.duty
     assert duty is not None
-    side = throttled_side(chain)
+    side = _throttled_side(chain)
     return Throttle(side, _moved(chain, duty.sides[side]), bool(duty.throttled))
 
 
-def throttled_side(chain: Chain) -> str:
+def _throttled_side(chain: Chain) -> str:
     """The side that the control acts on: the one that the file names, else by common practice."""
     duty = chain.calculation.duty
     assert duty is not None
@@ -136,7 +140,9 @@ def _flow(before: Chain, case: CaseOutcome, duty: Duty, throttle: Throttle) -> t
     spare_at = _spare(chain, before, case)
     stated = case.solutions[SERVICE].number(flow)
     low, high = SMALLEST_PART * stated, stated
-    must_spare(float(spare_at({flow: np.array([high])})[0]), f"the stated {side} flow")
+    short = nothing_to_spare(float(spare_at({flow: np.array([high])})[0]), f"the stated {side} flow")
+    if short:
+        raise NoState(short)
     for _ in range(ROUNDS):
         points = np.linspace(low, high, POINTS)
         found = spare_at({flow: points})

@@ -315,7 +315,7 @@ class _Search:
             self.directions,
             near,
             self.ends_close,
-            self.later if self.later.names else None,
+            self.later,
         )
         return self.table.takes(samples) + ahead
 

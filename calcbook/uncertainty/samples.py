@@ -19,7 +19,7 @@ from calcbook.chain.samples import Samples, mark_derived, mark_directions, mark_
 from calcbook.chain.solve import UNKNOWNS, Solution, closed, conditions_of, solve_both
 from calcbook.chain.types import CONDITIONS, SERVICE, Branch, Chain, ChainCheck, Group, Layer, StreamState
 from calcbook.properties import FluidAtPressure
-from calcbook.rating.parts import areas_of_parts, results_of_parts, what_parts_take
+from calcbook.rating.parts import parts_at_samples, what_parts_take
 from calcbook.uncertainty.figures import has_floor
 from calcbook.uncertainty.sampling import Sampled
 
@@ -342,15 +342,10 @@ class ChainModel:
         for state in self.states:
             if state in places:
                 possible &= places[state].converged
-        summed = self._summed(whole, solutions) if self.sums_parts else {}
-        return self._sampled(solutions, places, possible, size, summed)
-
-    def _summed(self, whole: Mapping[str, Array], solutions: Mapping[str, Solution]) -> dict[str, Array]:
-        """The results of the areas summed over the parts of the duty, by name."""
-        service = solutions[SERVICE]
-        areas = areas_of_parts(self.chain, whole, service)
-        installed = service.row(self.chain.results["area installed"])
-        return {name: values for name, values, _, _ in results_of_parts(areas, installed)}
+        if self.sums_parts:
+            summed = parts_at_samples(self.chain, whole, solutions[SERVICE])
+            solutions[SERVICE].values.update({name: values for name, values, _, _ in summed})
+        return self._sampled(solutions, places, possible, size)
 
     def _closed(self, whole: Mapping[str, Array], size: int) -> dict[str, Solution]:
         """The solutions of the conditions that are wanted; few samples of both are closed in one call.
@@ -374,7 +369,6 @@ class ChainModel:
         ends: Mapping[str, Solution],
         possible: Array,
         size: int,
-        summed: Mapping[str, Array],
     ) -> Sampled:
         marks: dict[str, Array] = {}
         any_outside = np.zeros(size, dtype=bool)
@@ -388,8 +382,6 @@ class ChainModel:
             name = mark_of(one)
             marks[name] = marks[name] | outside if name in marks else outside
         values = {state: solution.values for state, solution in (*solutions.items(), *ends.items())}
-        if summed:
-            values[SERVICE] = {**values[SERVICE], **summed}
         outputs = {
             one.name: np.where(possible, np.broadcast_to(one.value(values), (size,)), np.nan)
             for one in self.results

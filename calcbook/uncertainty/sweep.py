@@ -60,12 +60,11 @@ def sweep_of(solved: Solved, axes: tuple[Axis, ...], collector: Collector) -> Sw
     grids = np.meshgrid(*(np.array(axis.figures) for axis in axes), indexing="ij")
     for axis, grid in zip(axes, grids, strict=True):
         inputs[axis.input.id] = np.ascontiguousarray(grid.ravel())
-    later = AtSamples(solved, names)
     samples = evaluate_samples(
         solved.chain,
         inputs,
         phases=phases_of(solved.chain, (solved.base,)),
-        later=later if later.names else None,
+        later=AtSamples(solved, names),
     )
     return Sweep(
         axes,

@@ -108,7 +108,7 @@ def _kept_words(page: Page) -> str:
     """What stays of the duty in every state of day one, and what is found."""
     duty = page.calculation.duty
     assert duty is not None
-    if any(side.has_ends for side in duty.sides.values()):
+    if duty.has_ends:
         return "the inlets of the duty, its outlets found by effectiveness"
     return "the saturation temperatures of both streams"
 

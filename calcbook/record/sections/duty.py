@@ -83,16 +83,17 @@ def _arrangement(page: Page) -> list[tuple[str, str, str]]:
     duty = page.calculation.duty
     if duty is None:
         return []
-    if not all(side.has_ends for side in duty.sides.values()):
-        basis = "stated in `duty:`; beside a stream that keeps its temperature all have one mean difference"
-    else:
-        basis = "stated in `duty:`; it decides the mean difference"
+    basis = (
+        "beside a stream that keeps its temperature all have one mean difference"
+        if duty.is_beside_one_temperature
+        else "it decides the mean difference"
+    )
     shells = (
         f", {counted(duty.shells, 'shell', 'shells')} in series"
         if duty.arrangement == "shell and tube"
         else ""
     )
-    return [("Arrangement", f"{duty.arrangement}{shells}", basis)]
+    return [("Arrangement", f"{duty.arrangement}{shells}", f"stated in `duty:`; {basis}")]
 
 
 def _reached_basis(page: Page) -> str:

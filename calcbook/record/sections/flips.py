@@ -37,7 +37,7 @@ def flips(page: Page) -> list[Block]:
         " Plausible bands are not searched, and a verdict that flips and flips back between two figures of the"
         " search is not seen."
     )
-    blocks: list[Block] = [Heading(3, "Distance to flip"), Paragraph(words), *_alone(page)]
+    blocks: list[Block] = [Heading(3, "Distance to flip"), Paragraph(words), *_alone(page, found)]
     for kind in TITLES:
         blocks += _kind(page, found, kind)
     if found.unsettled:
@@ -48,7 +48,7 @@ def flips(page: Page) -> list[Block]:
     return [*blocks, Heading(4, "Range searched"), _searched(found)]
 
 
-def _alone(page: Page) -> list[Block]:
+def _alone(page: Page, found: Flips) -> list[Block]:
     """What moves with a figure that is changed alone, where an engineer would not expect it, and what is left out."""
     notes = []
     if page.result("closure") is not None:
@@ -60,11 +60,9 @@ def _alone(page: Page) -> list[Block]:
         notes.append(
             "A criterion that asks for a probability is searched by its verdict at the stated values."
         )
-    left_out = page.solved.flips.left_out if page.solved.flips is not None else ()
-    if left_out:
-        notes.append(
-            f"What is found once from the solved calculation is not searched: {'; '.join(left_out)}."
-        )
+    if found.left_out:
+        left = "; ".join(found.left_out)
+        notes.append(f"What is found once from the solved calculation is not searched: {left}.")
     geometry = page.calculation.geometry
     if geometry is not None and {"inside diameter", "outside diameter"} <= set(geometry.dimensions):
         notes.append("A diameter changed alone changes the thickness of the wall with it.")

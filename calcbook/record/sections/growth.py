@@ -53,7 +53,7 @@ def _aim(interval: Interval) -> str:
 def _stated(page: Page) -> str:
     """Where U and the margin stand, and what the basis of the heat is said of."""
     duty = page.calculation.duty
-    if duty is not None and not any(side.has_ends for side in duty.sides.values()):
+    if duty is not None and not duty.has_ends:
         return "the stated saturation temperatures; the heat is what U and area give"
     return "the stated ends; heat and outlets"
 
