@@ -959,9 +959,12 @@ def assumptions_of(chain: Chain, solutions: Mapping[str, Solution]) -> tuple[Run
                     owner,
                 )
     if chain.has_temperatures:
-        if "duty" in chain.results:
+        duty = chain.calculation.duty
+        if duty is not None and not duty.has_ends:
+            text, reason = "at the same saturation temperatures", "both streams keep their temperatures"
+        elif "duty" in chain.results:
             text, reason = "at the same ends of the streams", "the duty is stated"
-        elif chain.calculation.duty is not None:
+        elif duty is not None:
             text, reason = "at the ends that the unit reaches in service", "the outlets are not stated"
         else:
             text, reason = "at the stated bulk temperatures", "no duty is stated"

@@ -379,3 +379,10 @@ def test_a_criterion_on_the_heat_of_the_mean_temperatures_is_an_open_item(tmp_pa
     assert "judges U times the difference of the mean temperatures" in item.text
     both = solved(tmp_path, EVAPORATOR + criterion)
     assert not [one for one in both.base.open_items if one.id.endswith("mean temperatures")]
+
+
+@pytest.mark.parametrize("text", [EVAPORATOR, NO_DUTY])
+def test_conditions_are_compared_at_temperatures_that_nothing_moves(tmp_path: Path, text: str) -> None:
+    """Such a unit has no outlets that could be stated or reached."""
+    page = record_text(solved(tmp_path, text))
+    assert "Clean and service are compared at the same saturation temperatures." in page
