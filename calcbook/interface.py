@@ -11,6 +11,7 @@ from typing import Any
 from calcbook.calcfile import Calculation, Settings, read_calculation, read_settings
 from calcbook.chain.analysis import NotConverged, analyse, judged_later
 from calcbook.chain.build import build
+from calcbook.chain.impossible_results import tell_impossible_results
 from calcbook.chain.outcome import Solved
 from calcbook.chain.pressure import drops
 from calcbook.chain.types import Chain
@@ -160,6 +161,7 @@ def _solved(
         # A card that cannot be read is missing to the calculation that names it.
         _check_strangers(library, collector)
     if chain is None:
+        tell_impossible_results(calculation, collector)
         return None
     if library.house is not None:
         check_house_cards(chain, collector)
@@ -169,6 +171,8 @@ def _solved(
         # An unknown result in one place keeps none from being told in the others.
         swept_names(solved, collector)
         _assessed(solved, collector)
+    if solved is None:
+        tell_impossible_results(calculation, collector)
     if solved is None or collector:
         return None
     solved = _surveyed(_assessed(_followed(rated(solved)), collector), collector)

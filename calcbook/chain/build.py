@@ -133,6 +133,8 @@ class _Builder:
             self.checks += self.specified.checks()
             self.open_figures = self.specified.open_figures()
         has_duty = self.duty is not None and self.duty.balance(self.streams)
+        if self.duty is not None and not has_duty:
+            self.duty.read_stated()
         self.checks += lay_out_cards(scope, self.library, self.streams)
         self.checks += viscosity_checks(scope, self.streams)
         return has_duty

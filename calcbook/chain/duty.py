@@ -156,6 +156,11 @@ class DutyLayout:
         self._end_checks()
         return True
 
+    def read_stated(self) -> None:
+        """Read what the duty itself states, where it came to no balance: so its faults are told in one round."""
+        self.scope.value(self.duty.heat_flow, "heat flow", OWNER, "heat flow")
+        self.scope.value(self.duty.installed_area, "area", OWNER, "installed area")
+
     def _is_isothermal(self, name: str, side: DutySide, state: StreamState) -> bool:
         if not state.is_saturated:
             self._fault(

@@ -32,6 +32,12 @@ def conditions_of(name: str) -> tuple[str, ...]:
     return (CLEAN,) if found is not None and CLEAN in found.groups() else (SERVICE,)
 
 
+def is_named_by_pattern(name: str) -> bool:
+    """Whether a name is built like that of a result of a condition, a term or a stream; not whether it is there."""
+    patterns = (_WITH_CONDITION, _OF_TERM, _OF_STREAM, _PRESSURE_DROP)
+    return any(pattern.fullmatch(name) for pattern in patterns)
+
+
 def pressure_drop_of(name: str) -> tuple[str, str] | None:
     """The stream and the condition of a pressure drop by its name; None for another result."""
     found = _PRESSURE_DROP.fullmatch(name)
