@@ -166,7 +166,7 @@ def _solved(
     if library.house is not None:
         check_house_cards(chain, collector)
     axes = axes_of(chain, collector)
-    solved = analyse(chain, collector)
+    solved = analyse(chain, collector, for_record)
     if solved is not None and collector:
         # An unknown result in one place keeps none from being told in the others.
         swept_names(solved, collector)

@@ -147,13 +147,14 @@ def keeps_what_is_found_later(chain: Chain, case: str) -> bool:
     return restated <= times - {f"given/{symbol}" for symbol in typed}
 
 
-def analyse(chain: Chain, collector: Collector) -> Solved | None:
+def analyse(chain: Chain, collector: Collector, for_record: bool = True) -> Solved | None:
     """Solve every case in both conditions and evaluate everything the record holds.
 
-    Faults go to the collector: None is returned with those of state (a liquid that is vapour, a wall turned inside out),
-    and the figures with those of criteria and acceptances alone. Raises ``NotConverged``.
+    What only a record shows (other methods, what each figure moves U by) is worked out ``for_record`` alone.
+    Faults go to the collector: None is returned with those of state (a liquid that is vapour, a wall turned inside
+    out), and the figures with those of criteria and acceptances alone. Raises ``NotConverged``.
     """
-    return _Analysis(chain, collector).solved()
+    return _Analysis(chain, collector).solved(for_record)
 
 
 class _Analysis:
@@ -170,7 +171,7 @@ class _Analysis:
         # Surfaces at ends of the case at hand at which the circuit does not close.
         self.open_surfaces: frozenset[str] = frozenset()
 
-    def solved(self) -> Solved | None:
+    def solved(self, for_record: bool) -> Solved | None:
         names = ("", *self.chain.calculation.cases)
         self.inputs = {name: completed(self.chain, self.chain.case_inputs(name)) for name in names}
         if not self._figures_are_found():
@@ -194,17 +195,14 @@ class _Analysis:
         if self.chain.calculation.places:
             cases[0] = _with_mean(cases, self.chain.calculation.places)
         governing = _governing(cases, self.chain.calculation.places)
+        names_of = {name: case.name for name, case in governing.items()}
+        solved = Solved(self.chain, tuple(cases), {}, (), self.used_cards, names_of)
+        if not for_record:
+            return solved
         # Other methods are held where the verdicts are decided, beside the base case.
         crossed = {case.name: case for case in (cases[0], *governing.values())}
         cross = cross_check(self.chain, list(crossed.values()), self.dimensions)
-        return Solved(
-            self.chain,
-            tuple(cases),
-            cross,
-            self._sensitivity(cases[0]),
-            self.used_cards,
-            {name: case.name for name, case in governing.items()},
-        )
+        return replace(solved, cross=cross, sensitivity=self._sensitivity(cases[0]))
 
     def _figures_are_found(self) -> bool:
         """Whether every open figure has a value; a stop limit that explains a missing one is a fault.

@@ -328,7 +328,7 @@ def _effect(side: Side, tree: Node, library: Library, replaced: Sequence[str]) -
     document = Document(side.document.name, "", unlinked(tree))
     calculation = read_document(document, side.calculation.settings, collector, Path())
     chain = build(calculation, library, collector)
-    solved = analyse(chain, collector) if chain is not None else None
+    solved = analyse(chain, collector, for_record=False) if chain is not None else None
     collector.stop_if_any()
     assert solved is not None
     before = _as_solved_here(side.solved)
