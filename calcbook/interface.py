@@ -11,6 +11,7 @@ from typing import Any
 from calcbook.calcfile import Calculation, Settings, read_calculation, read_settings
 from calcbook.chain.analysis import NotConverged, analyse, judged_later
 from calcbook.chain.build import build
+from calcbook.chain.flips_outcome import Flips
 from calcbook.chain.impossible_results import tell_impossible_results
 from calcbook.chain.outcome import Solved
 from calcbook.chain.pressure import drops
@@ -26,6 +27,8 @@ from calcbook.uncertainty.sweep import axes_of, sweep_of, swept_names
 HOUSE_CARDS = "cards"
 # So many calculations may take from each other in a row before one is pinned to an issued revision.
 DEEPEST_LINKS = 24
+# What gives the distances to flip of a solved calculation.
+Search = Callable[[Solved], Flips]
 
 __all__ = ["NotConverged", "read", "record_text", "solve", "solve_file"]
 
@@ -56,21 +59,39 @@ def solve(calculation: Calculation, library: Library | None = None) -> Solved:
 
 
 def solve_file(
-    path: Path, name: str | None = None, above: tuple[Path, ...] = (), for_record: bool = True
+    path: Path,
+    name: str | None = None,
+    above: tuple[Path, ...] = (),
+    for_record: bool = True,
+    search: Search = distances_to_flip,
 ) -> Solved:
     """Read and solve a file, with the faults of both stages told at once.
 
     ``above`` are the files whose links led here, so that a circle is found. What only a record shows (sweep,
-    distances to flip) is searched ``for_record`` alone. Raises ``Faults`` and ``NotConverged``.
+    distances to flip) is searched ``for_record`` alone, and ``search`` gives the latter. Raises ``Faults`` and
+    ``NotConverged``.
     """
     collector = Collector()
     settings = _settings(path.parent, collector)
     resolve = links_of(path, settings, above)
     calculation = read_calculation(path, settings, collector, name, resolve)
-    solved = _solved(calculation, library_of(path.parent / HOUSE_CARDS), collector, for_record)
+    solved = _solved(calculation, library_of(path.parent / HOUSE_CARDS), collector, for_record, search)
     collector.stop_if_any()
     assert solved is not None
     return solved
+
+
+def search_file(path: Path, name: str) -> Flips | None:
+    """The distances to flip of a file as its record has them, and nothing else; None where it has a fault.
+
+    Raises ``Faults`` and ``NotConverged``.
+    """
+    collector = Collector()
+    settings = read_settings(path.parent)
+    calculation = read_calculation(path, settings, collector, name, links_of(path, settings))
+    chain = None if collector else build(calculation, library_of(path.parent / HOUSE_CARDS), collector)
+    solved = analyse(chain, collector, for_record=False) if chain is not None else None
+    return distances_to_flip(solved) if solved is not None and not collector else None
 
 
 def _settings(folder: Path, collector: Collector) -> Settings:
@@ -151,7 +172,11 @@ def source_of(solved: Solved) -> Source:
 
 
 def _solved(
-    calculation: Calculation, library: Library, collector: Collector, for_record: bool = True
+    calculation: Calculation,
+    library: Library,
+    collector: Collector,
+    for_record: bool = True,
+    search: Search = distances_to_flip,
 ) -> Solved | None:
     if collector and calculation.figures_hold:
         _faults_of_figures(calculation, library, collector)
@@ -184,7 +209,7 @@ def _solved(
     if not for_record:
         return solved
     solved = replace(solved, sweep=sweep_of(solved, axes, collector))
-    return replace(solved, flips=distances_to_flip(solved)) if not collector else None
+    return replace(solved, flips=search(solved)) if not collector else None
 
 
 def _faults_of_figures(calculation: Calculation, library: Library, collector: Collector) -> None:

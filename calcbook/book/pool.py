@@ -35,7 +35,7 @@ def pool_map(
     from concurrent.futures.process import BrokenProcessPool
 
     with _pool(jobs) as pool:
-        with _deaf_to_interrupts():
+        with deaf_to_interrupts():
             futures = deque(pool.submit(work, item) for item in items)
         for item in items:
             try:
@@ -64,7 +64,7 @@ def _alone(work: Callable[[Item], Product], item: Item, lost: Callable[[Item], P
     from concurrent.futures.process import BrokenProcessPool
 
     with _pool(1) as pool:
-        with _deaf_to_interrupts():
+        with deaf_to_interrupts():
             future = pool.submit(work, item)
         try:
             return future.result()
@@ -73,7 +73,7 @@ def _alone(work: Callable[[Item], Product], item: Item, lost: Callable[[Item], P
 
 
 @contextlib.contextmanager
-def _deaf_to_interrupts() -> Iterator[None]:
+def deaf_to_interrupts() -> Iterator[None]:
     """Processes started here ignore an interrupt from the keyboard, from their first moment on."""
     if threading.current_thread() is not threading.main_thread():
         yield

@@ -12,7 +12,8 @@ from calcbook.book.pool import pool_map
 from calcbook.chain.outcome import Solved
 from calcbook.faults import Fault, Faults, Place
 from calcbook.files import write_together
-from calcbook.interface import NotConverged, solve_file
+from calcbook.interface import NotConverged, Search, solve_file
+from calcbook.uncertainty.flips import distances_to_flip
 
 RECORD, RESULTS = "record.md", "results.json"
 PARALLEL_FROM = 8
@@ -73,13 +74,13 @@ def _lost(found: Found) -> Outcome | Texts:
     return Outcome(found.name, mistake=PROCESS_ENDED)
 
 
-def solved_texts(found: Found) -> Outcome | Texts:
-    """Solve one file and make its texts; nothing is written yet.
+def solved_texts(found: Found, search: Search = distances_to_flip) -> Outcome | Texts:
+    """Solve one file and make its texts; nothing is written yet. ``search`` gives its distances to flip.
 
     A mistake of calcbook itself is this file's outcome, so that the others of its book are written.
     """
     try:
-        return texts_of(found, solve_file(found.path, found.name))
+        return texts_of(found, solve_file(found.path, found.name, search=search))
     except Faults as faults:
         return Outcome(found.name, faults=faults.faults)
     except NotConverged as error:

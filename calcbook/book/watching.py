@@ -9,18 +9,19 @@ nothing has changed meanwhile: one that was caught half written is read again.
 
 from __future__ import annotations
 
-import os
 import re
 import time
-from collections.abc import Callable, Iterable, Iterator, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
 
+from calcbook.book.beside import Beside
 from calcbook.book.finding import BESIDE, Found, find_calculations
+from calcbook.book.marks import HouseCards, Marks, marks_of
 from calcbook.book.running import Outcome, solved_texts, written
 from calcbook.calcfile import BOOK_FILE
 from calcbook.faults import Collector, Faults
-from calcbook.interface import HOUSE_CARDS, forget_house_cards
+from calcbook.interface import HOUSE_CARDS
 from calcbook.links import ISSUED
 
 # Between two looks, in seconds: a look at a hundred files takes less than a millisecond.
@@ -30,9 +31,6 @@ SETTLED = 0.01
 FILE_NAMED = re.compile(r"\bfile *: *[\"']?([^\n\"',{}\[\]]+)")
 LINKED = re.compile(r"\bfrom *:")
 
-# What tells one state of a file from another; None where there is none.
-Mark = tuple[int, int, int] | None
-Marks = dict[Path, Mark]
 Tell = Callable[[Outcome], None]
 
 
@@ -62,7 +60,8 @@ class Watch:
         self.watched: dict[Path, _Watched] = {}
         self.listed: Marks = {}
         self.fault = ""
-        self.cards: dict[Path, Marks] = {}
+        self.cards = HouseCards()
+        self.beside = Beside()
 
     def run(self) -> None:
         """Calculate everything once, then look for changes until interrupted (``KeyboardInterrupt``)."""
@@ -75,10 +74,10 @@ class Watch:
         """Look once; calculate what changed since the last look."""
         self._find()
         for item in list(self.watched.values()):
-            if item.marks and item.marks == _marks(item.marks):
+            if item.marks and item.marks == marks_of(item.marks):
                 continue
             before = item.marks
-            item.marks = _marks(_rests_on(item))
+            item.marks = marks_of(_rests_on(item))
             if item.marks != before:
                 self._calculate(item)
 
@@ -86,7 +85,7 @@ class Watch:
         """The calculation files, found again where a folder or a book's settings changed."""
         places = set(self.paths)
         places |= {(path if path.is_dir() else path.parent) / BOOK_FILE for path in self.paths}
-        listed = _marks(places)
+        listed = marks_of(places)
         if listed == self.listed:
             return
         self.listed = listed
@@ -127,11 +126,11 @@ class Watch:
 
     def _calculate(self, item: _Watched) -> None:
         """Calculate and tell, unless what was read changes meanwhile: the next look finds that it has."""
-        self._forget_changed_cards(item.found.path.parent / HOUSE_CARDS)
-        made = solved_texts(item.found)
+        self.cards.forget_changed(item.found.path.parent / HOUSE_CARDS)
+        made = solved_texts(item.found, self.beside.begin(item.found, item.marks))
         if isinstance(made, Outcome):
             time.sleep(SETTLED)
-        has_changed = item.marks != _marks(item.marks)
+        has_changed = item.marks != marks_of(item.marks)
         # Where saves come faster than answers every second one is taken: the next look makes it good.
         if has_changed and (isinstance(made, Outcome) or not item.dropped):
             item.dropped = True
@@ -150,17 +149,10 @@ class Watch:
         item.lacks_number = made.outcome.number.casefold() in taken
         if before != item.number:
             # The folder of its issued copies is known by its number alone.
-            item.marks |= _marks([item.found.output / item.number / ISSUED])
+            item.marks |= marks_of([item.found.output / item.number / ISSUED])
         self.tell(outcome)
         if before and before != item.number:
             self._number_is_free()
-
-    def _forget_changed_cards(self, house: Path) -> None:
-        """Have the cards of a book read again where one changed."""
-        marks = _marks(_files(house, "*.yaml"))
-        if self.cards.setdefault(house, marks) != marks:
-            self.cards[house] = marks
-            forget_house_cards()
 
 
 def _rests_on(item: _Watched) -> Iterator[Path]:
@@ -188,15 +180,3 @@ def _rests_on(item: _Watched) -> Iterator[Path]:
 
 def _files(folder: Path, pattern: str) -> list[Path]:
     return sorted(folder.glob(pattern))
-
-
-def _marks(paths: Iterable[Path]) -> Marks:
-    return {path: _mark(path) for path in paths}
-
-
-def _mark(path: Path) -> Mark:
-    try:
-        state = os.stat(path)
-    except OSError:
-        return None
-    return (state.st_mtime_ns, state.st_size, state.st_ino)

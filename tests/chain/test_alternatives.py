@@ -124,7 +124,7 @@ def test_every_criterion_has_its_governing_case_and_that_is_crossed(tmp_path: Pa
     shutil.copy(CALCS / "book.yaml", tmp_path)
     path = tmp_path / "sh-831.yaml"
     path.write_text(text, encoding="utf-8")
-    solved = solve_file(path, for_record=False)
+    solved = solve_file(path)
     margins = {(item.id, case.name): item.margin for case in solved.cases for item in case.criteria}
     for name, least in solved.governing.items():
         assert margins[name, least] == min(margin for (one, _), margin in margins.items() if one == name)
