@@ -59,7 +59,7 @@ def _of_branch(
         "pressure",
     )
     temperature = scope.step(
-        f"{branch.name}/T_sat left",
+        f"{branch.name}/outlet/saturation temperature",
         "T_sat_out",
         f"saturation temperature of {state.name} at its outlet",
         branch.name,

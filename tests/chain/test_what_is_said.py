@@ -9,6 +9,7 @@ import shutil
 from pathlib import Path
 
 import pytest
+from iapws import IAPWS97
 
 from calcbook.chain.outcome import Solved
 from calcbook.interface import record_text, solve_file
@@ -118,3 +119,14 @@ def test_an_accuracy_outside_the_range_of_its_card_says_so(tmp_path: Path) -> No
 def test_the_title_block_tells_criteria_that_are_not_met() -> None:
     assert "| Criteria | criterion 1 not met, case warm running |" in record_text(example("oc-201"))
     assert "| Criteria | every criterion met in every case |" in record_text(example("kr-801"))
+
+
+def test_a_saturation_temperature_is_told_with_its_place() -> None:
+    """Of the stated pressure, and of what is left of it at the outlet: by IAPWS-IF97, within its 0.01 K of the other
+    formulation at these pressures."""
+    solved = example("kr-801")
+    rows = [line.split(" | ") for line in record_text(solved).splitlines() if line.startswith("| steam | ")]
+    found = {row[1]: float(row[3]) for row in rows if row[2] == "saturation temperature"}
+    left = solved.base.solutions["service"].number("steam film/pressure left")
+    assert found["saturation"] == pytest.approx(IAPWS97(P=0.102, x=0).T, abs=0.015)
+    assert found["outlet"] == pytest.approx(IAPWS97(P=left / 1e6, x=0).T, abs=0.015)
