@@ -352,9 +352,21 @@ class _Analysis:
             "limit-stops",
             self._place_of(check.owner),
             f"{f'case {check.case}: ' if check.case else ''}{check.id}: no number is given outside this limit",
-            found=check.figure,
+            found=f"{check.figure}{self._found_ends(check)}",
             expected=f"{check.limit} ({check.because})",
         )
+
+    def _found_ends(self, check: CheckResult) -> str:
+        """For a limit of the duty, the ends that it found for itself: no line of the file has them."""
+        if check.owner != DUTY:
+            return ""
+        figures = {item.id: float(self.inputs[check.case][item.id]) for item in self.chain.open_figures}
+        found = [
+            f"{' '.join(name.split('/')[1:])} {celsius(value)}"
+            for name, value in figures.items()
+            if name.startswith(f"{DUTY}/") and math.isfinite(value)
+        ]
+        return f" ({', '.join(found)}, as found)" if found else ""
 
     # -- results ------------------------------------------------------------------------------------
 
