@@ -29,6 +29,7 @@ from calcbook.chain.findings import (
     assumptions_of,
     celsius,
     ending_properties,
+    freezing_of,
     jump_items,
     must_be,
     root_items,
@@ -308,13 +309,17 @@ class _Analysis:
         for branch, other, property_name, missing in ending_properties(self.chain, solution):
             if missing.any():
                 where = f"case {name}: " if name else ""
-                bulk = celsius(solution.number(other.bulk))
+                bulk = solution.number(other.bulk)
+                state = self.chain.streams[branch.stream]
+                freezing = freezing_of(state, solution)
+                freezes = f": it freezes at {celsius(freezing)}" if bulk < freezing else ""
                 self.collector.add(
                     "outside-fluid-range",
-                    self.chain.streams[branch.stream].place,
-                    f"{where}the surface of {branch.name} may come as near to the other side as {bulk}, where"
-                    f" {branch.stream} has no {property_name}",
-                    expected="a fluid or table that reaches the other side's temperature",
+                    state.place,
+                    f"{where}the surface of {branch.name} may come as near to the other side as {celsius(bulk)}, where"
+                    f" {branch.stream} has no {property_name}{freezes}",
+                    expected="a fluid or table that reaches the other side's temperature"
+                    f"{', or another side that leaves the surface warmer' if freezes else ''}",
                 )
                 return
 

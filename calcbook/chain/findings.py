@@ -667,10 +667,22 @@ def lacks_freezing_point(state: StreamState, solution: Solution) -> bool:
     if state.phase == "gas" or state.fluid.text.kind == "humid air":
         return False
     try:
-        fluid = state.fluid.state(*_pressure_and_fraction(state, solution), state.phase)
+        return _freezing(state, solution) is None
     except PropertyFault:
         return False
-    return fluid.freezing_temperature() is None
+
+
+def freezing_of(state: StreamState, solution: Solution) -> float:
+    """Where a stream of a single record freezes, K; NaN where that is not known."""
+    try:
+        found = _freezing(state, solution)
+    except PropertyFault:
+        return math.nan
+    return math.nan if found is None else found
+
+
+def _freezing(state: StreamState, solution: Solution) -> float | None:
+    return state.fluid.state(*_pressure_and_fraction(state, solution), state.phase).freezing_temperature()
 
 
 def _pressure_and_fraction(state: StreamState, solution: Solution) -> tuple[float | None, float | None]:
