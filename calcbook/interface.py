@@ -63,13 +63,13 @@ def solve_file(
     name: str | None = None,
     above: tuple[Path, ...] = (),
     for_record: bool = True,
-    search: Search = distances_to_flip,
+    search: Search | None = distances_to_flip,
 ) -> Solved:
     """Read and solve a file, with the faults of both stages told at once.
 
     ``above`` are the files whose links led here, so that a circle is found. What only a record shows (sweep,
-    distances to flip) is searched ``for_record`` alone, and ``search`` gives the latter. Raises ``Faults`` and
-    ``NotConverged``.
+    distances to flip) is searched ``for_record`` alone; ``search`` gives the latter, None leaves them to the caller.
+    Raises ``Faults`` and ``NotConverged``.
     """
     collector = Collector()
     settings = _settings(path.parent, collector)
@@ -176,7 +176,7 @@ def _solved(
     library: Library,
     collector: Collector,
     for_record: bool = True,
-    search: Search = distances_to_flip,
+    search: Search | None = distances_to_flip,
 ) -> Solved | None:
     if collector and calculation.figures_hold:
         _faults_of_figures(calculation, library, collector)
@@ -209,7 +209,9 @@ def _solved(
     if not for_record:
         return solved
     solved = replace(solved, sweep=sweep_of(solved, axes, collector))
-    return replace(solved, flips=search(solved)) if not collector else None
+    if collector:
+        return None
+    return replace(solved, flips=search(solved)) if search is not None else solved
 
 
 def _faults_of_figures(calculation: Calculation, library: Library, collector: Collector) -> None:

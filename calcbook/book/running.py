@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 from calcbook.book.finding import Found
@@ -80,7 +80,7 @@ def solved_texts(found: Found, search: Search = distances_to_flip) -> Outcome | 
     A mistake of calcbook itself is this file's outcome, so that the others of its book are written.
     """
     try:
-        return texts_of(found, solve_file(found.path, found.name, search=search))
+        return texts_of(found, solve_file(found.path, found.name, search=None), search)
     except Faults as faults:
         return Outcome(found.name, faults=faults.faults)
     except NotConverged as error:
@@ -89,8 +89,10 @@ def solved_texts(found: Found, search: Search = distances_to_flip) -> Outcome | 
         return Outcome(found.name, mistake=mistake_words(error))
 
 
-def texts_of(found: Found, solved: Solved) -> Texts:
+def texts_of(found: Found, solved: Solved, search: Search) -> Texts:
     """Record and results of a solved calculation, from one digest and one list of versions.
+
+    ``search`` is asked last, as another process may be at it meanwhile.
 
     Raises ``Faults`` when the sign-offs beside the file or an issued copy cannot be read.
     """
@@ -109,6 +111,7 @@ def texts_of(found: Found, solved: Solved) -> Texts:
         conclusion(solved, "U_service"),
         len(solved.open_items),
     )
+    solved = replace(solved, flips=search(solved))
     record = markdown(record_blocks(solved, digest, software, life))
     return Texts(found, outcome, record, results_text(solved, digest, software))
 

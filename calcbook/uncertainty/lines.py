@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Iterator
 from dataclasses import dataclass
+from functools import cache
 
 import numpy as np
 
@@ -35,8 +36,8 @@ class Reach:
 def reach(item: Input, now: float, direction: int, changes_state: bool) -> Reach:
     """The figures (SI) that a given takes on one side: below (``direction`` -1) or above (+1) the present one."""
     if item.kind.scale == "point":
-        offsets = np.geomspace(NEAREST_KELVIN, FARTHEST_KELVIN, POINTS)
-        figures = [now + direction * float(offset) for offset in offsets]
+        offsets = _spread(NEAREST_KELVIN, FARTHEST_KELVIN, POINTS)
+        figures = [now + direction * offset for offset in offsets]
         return Reach(tuple(figure for figure in figures if figure > 0.0), f"{FARTHEST_KELVIN:g} K away")
     if item.kind.counts and now == int(now):
         return _whole(item, now, direction)
@@ -46,18 +47,17 @@ def reach(item: Input, now: float, direction: int, changes_state: bool) -> Reach
             return Reach((), "zero")
         low, high = FROM_ZERO
         return Reach(
-            tuple(direction * float(figure) for figure in np.geomspace(low, high, count)),
+            tuple(direction * figure for figure in _spread(low, high, count)),
             "the end of the search",
         )
     near = STATE_NEAREST if changes_state else NEAREST
     if item.kind.sign == "any" or item.kind.reading == "gauge" or now < 0.0:
-        offsets = abs(now) * np.geomspace(near, factor, count)
         return Reach(
-            tuple(now + direction * float(offset) for offset in offsets),
+            tuple(now + direction * abs(now) * part for part in _spread(near, factor, count)),
             f"{_words(factor)[1]} times its size away",
         )
-    logarithms = np.geomspace(near, math.log(factor), count)
-    figures = [now * math.exp(direction * float(logarithm)) for logarithm in logarithms]
+    logarithms = _spread(near, math.log(factor), count)
+    figures = [now * math.exp(direction * logarithm) for logarithm in logarithms]
     bound = item.kind.bounds[direction > 0]
     if math.isfinite(bound):
         inside = [figure for figure in (now, *figures) if direction * figure < direction * bound]
@@ -70,6 +70,12 @@ def reach(item: Input, now: float, direction: int, changes_state: bool) -> Reach
     return Reach(tuple(figures), f"{_words(factor)[1]} times it")
 
 
+@cache
+def _spread(low: float, high: float, count: int) -> tuple[float, ...]:
+    """Figures from one to another, each as much larger than the one before it."""
+    return tuple(np.geomspace(low, high, count).tolist())
+
+
 def _words(factor: float) -> tuple[str, str]:
     return {10.0: ("a tenth", "ten"), 100.0: ("a hundredth", "a hundred")}[factor]
 
@@ -78,7 +84,8 @@ def _whole(item: Input, now: float, direction: int) -> Reach:
     """Whole numbers: each of the nearest, then in widening steps."""
     lowest = 0.0 if item.kind.sign == "not negative" else 1.0
     far = FACTOR * max(now, 1.0)
-    offsets = [*range(1, WHOLE_NEAR), *np.geomspace(WHOLE_NEAR, far, POINTS - WHOLE_NEAR).round()]
+    wide = _spread(WHOLE_NEAR, far, POINTS - WHOLE_NEAR)
+    offsets = [*range(1, WHOLE_NEAR), *(round(offset) for offset in wide)]
     figures = dict.fromkeys(now + direction * float(offset) for offset in offsets)
     if direction > 0:
         return Reach(tuple(figures), f"{_words(FACTOR)[1]} times it")

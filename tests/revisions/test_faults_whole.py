@@ -21,7 +21,6 @@ import kill_runs  # noqa: E402
 from signed_book import CALCULATION, day, make_book, sign_all, sign_prepared, work_of  # noqa: E402
 
 from calcbook.book import Found, run_all, running  # noqa: E402
-from calcbook.interface import solve_file  # noqa: E402
 from calcbook.revisions.issuing import issue  # noqa: E402
 from calcbook.seals import check_seals  # noqa: E402
 
@@ -168,7 +167,7 @@ def test_a_run_into_an_output_that_is_read_only_is_a_fault_and_leaves_the_record
     guarded.write_text(CALCULATION.replace("0.00018 m^2 K/W", "0.00035 m^2 K/W"), encoding="utf-8")
     # Solved with every right, which a checkout in a private folder asks for: what fails below is the writing.
     found = Found(guarded, "wc-101.yaml", folder / "output")
-    texts = running.texts_of(found, solve_file(guarded))
+    texts = running.solved_texts(found)
     monkeypatch.setattr(running, "solved_texts", lambda found: texts)
     with Unprivileged():
         (outcome,) = run_all([found], 1, lambda outcome: None)
