@@ -20,7 +20,7 @@ from calcbook.chain.solve import PIECE, Solution, solve
 from calcbook.chain.survey_outcome import RowFigure
 from calcbook.chain.types import CLEAN, Chain, ChainCheck
 from calcbook.formulas import dimension, evaluate, parse_expression, write
-from calcbook.library.cards import Assignment, Limit
+from calcbook.library.cards import Limit
 from calcbook.library.operations import RelationOperation, Slopes, run
 from calcbook.library.programs import Program, ProgramLimit, ProgramStep
 from calcbook.quantities import DIMENSIONLESS, si_unit
@@ -28,10 +28,12 @@ from calcbook.quantities import DIMENSIONLESS, si_unit
 Array = np.ndarray
 CARD = "fouling-from-plant-data"
 HOT, COLD, ONE_SIDE = "duty/hot/Q", "duty/cold/Q", "duty/Q"
-# What passes the wall of the hot stream's heat, where a part x of it goes to the surroundings.
+# What passes the wall of the hot stream's heat, where a part x of it goes to the surroundings; a side whose heat its
+# own flow does not show carries what passes.
 PASSES = parse_expression("Q_hot*(1 - x)")
+AS_HOT, AS_COLD = parse_expression("Q_h"), parse_expression("Q_c")
 STREAM_HEAT = "Q_h of the stream"
-LOSS = "heat loss"
+LOSS, CLOSURE = "heat loss", "closure"
 ONE = np.ones(())
 
 
@@ -69,12 +71,19 @@ class Found:
 
 @dataclass(frozen=True)
 class _Way:
-    """The way from the chain's figures to the resistance: ids by the needs of the card, and its steps."""
+    """The way from the chain's figures to the resistance: ids by the needs of the card, and the steps ``first``, that
+    give the heat of both sides at the wall from those of the streams."""
 
     program: Program
-    steps: tuple[ProgramStep, ...]
+    first: tuple[ProgramStep, ...]
     bound: Mapping[str, str]
     has_closure: bool
+
+    @property
+    def steps(self) -> tuple[ProgramStep, ...]:
+        """All of it; the closure of two heats that are one says nothing."""
+        card = (step for step in self.program.steps if step.symbol != CLOSURE or self.has_closure)
+        return (*self.first, *card)
 
     def values(self, solution: Solution, loss: float, count: int) -> dict[str, Array]:
         values: dict[str, Array] = {
@@ -86,27 +95,37 @@ class _Way:
 
 
 def _way(chain: Chain) -> _Way:
-    """A side whose heat its own flow does not show is taken to carry what the other shows."""
+    """The heat of both sides at the wall, then the steps of the card."""
     program = chain.library.program(CARD)
     known = {step.id for step in (*chain.steps, *chain.circuit)}
-    one = next(name for name in (HOT, COLD, ONE_SIDE) if name in known)
+    loses = ProgramStep("Q_h", "Q_h", CARD, "", RelationOperation(PASSES), {"Q_hot": STREAM_HEAT, "x": "x"})
+    as_hot = ProgramStep("Q_c", "Q_c", CARD, "", RelationOperation(AS_HOT), {"Q_h": "Q_h"})
+    as_cold = ProgramStep("Q_h", "Q_h", CARD, "", RelationOperation(AS_COLD), {"Q_c": "Q_c"})
+    heats: dict[str, str]
+    first: tuple[ProgramStep, ...]
+    if HOT in known and COLD in known:
+        heats, first = {STREAM_HEAT: HOT, "Q_c": COLD}, (loses,)
+    elif HOT in known:
+        heats, first = {STREAM_HEAT: HOT}, (loses, as_hot)
+    else:
+        heats, first = {"Q_c": COLD if COLD in known else ONE_SIDE}, (as_cold,)
     bound = {
-        STREAM_HEAT: HOT if HOT in known else one,
-        "Q_c": COLD if COLD in known else one,
+        **heats,
         "A": chain.results["area installed"],
         "F": chain.results.get("F", ""),
         "LMTD": chain.results["LMTD"],
         "U_c": chain.results["U"],
     }
-    loses = ProgramStep("Q_h", "Q_h", CARD, "", RelationOperation(PASSES), {"Q_hot": STREAM_HEAT, "x": "x"})
-    return _Way(program, (loses, *program.steps), bound, HOT in known and COLD in known)
+    return _Way(program, first, bound, HOT in known and COLD in known)
 
 
 def relations_of(chain: Chain) -> str:
     """The relations that make the resistance of a row, as text."""
-    lines = (line for line in chain.library.program(CARD).method.lines if isinstance(line, Assignment))
+    operations = ((step.symbol, step.operation) for step in _way(chain).steps)
     return "; ".join(
-        [f"Q_h = {write(PASSES)}", *(f"{line.symbol} = {write(line.relation)}" for line in lines)]
+        f"{symbol} = {write(operation.relation)}"
+        for symbol, operation in operations
+        if isinstance(operation, RelationOperation)
     )
 
 
@@ -179,9 +198,11 @@ def _found(way: _Way, limits: tuple[_RangeLimit, ...], solution: Solution, loss:
     def told(name: str) -> Array:
         return np.where(solution.converged, np.broadcast_to(values[name], (count,)), np.nan)
 
-    closure = told("closure") if way.has_closure else np.full(count, np.nan)
+    closure = told(CLOSURE) if way.has_closure else np.full(count, np.nan)
     outside = tuple(
-        (item.limit, np.broadcast_to(~_holds(item, values), (count,))) for item in way.program.limits
+        (item.limit, np.broadcast_to(~_holds(item, values), (count,)))
+        for item in way.program.limits
+        if way.has_closure or CLOSURE not in item.inputs
     )
     beyond = np.zeros(count, dtype=bool)
     methods: dict[str, None] = {}
@@ -282,5 +303,5 @@ def slopes(chain: Chain, columns: Mapping[str, Array], loss: float) -> dict[str,
     for name in seeds:
         for key, slope in traced[way.bound[name]].items():
             found[key] = found.get(key, np.zeros(count)) + np.broadcast_to(local[name] * slope, (count,))
-    found[LOSS] = np.broadcast_to(local["x"], (count,))
+    found[LOSS] = np.broadcast_to(local.get("x", np.zeros(())), (count,))
     return found

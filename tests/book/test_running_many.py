@@ -62,10 +62,10 @@ def test_a_mistake_of_calcbook_is_told_and_the_others_are_written(
     calcs = book_of(tmp_path, 3)
     solve_file = running.solve_file
 
-    def solved(path: Path, name: str) -> object:
+    def solved(path: Path, name: str, **words: object) -> object:
         if path.name == "001.yaml":
             {}["a figure that nobody laid out"]
-        return solve_file(path, name)
+        return solve_file(path, name, **words)
 
     monkeypatch.setattr(running, "solve_file", solved)
     result = CliRunner().invoke(main, ["run", str(calcs), "--output", str(tmp_path / "out")])

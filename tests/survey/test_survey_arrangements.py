@@ -12,7 +12,7 @@ from survey_calculations import COOLER, SURVEY, columns_of, solved_survey, surve
 
 from calcbook.chain.outcome import Solved
 from calcbook.interface import read, record_text, solve
-from calcbook.survey.resistance import resistances
+from calcbook.survey.resistance import LOSS, relations_of, resistances, slopes, worked
 
 AREA = np.pi * OUTSIDE * LENGTH * TUBES
 
@@ -117,6 +117,43 @@ def test_heat_that_only_one_stream_shows_is_taken_from_it(tmp_path: Path) -> Non
     limits = {rule.id: rule.limit for rule in outcome.rules}
     assert limits["heat balance closure"] == "not applied: only one stream shows its heat"
     assert "not applied" in record_text(solved)
+
+
+def test_a_loss_of_the_hot_stream_acts_in_full_where_it_alone_shows_its_heat(tmp_path: Path) -> None:
+    """Q = Q_hot (1 - x) passes the wall, so U is by that part smaller, and dR_f/dx = 1/(U (1 - x)); by hand."""
+    text = COOLER.replace(", flow: m_cold}", "}")
+    text = text.replace(", scales with: (m_cold/m_ref)**0.6", "")
+    path = tmp_path / "trial.yaml"
+    path.write_text(text, encoding="utf-8")
+    chain = solve(read(path)).chain
+    columns = columns_of(history(Truth(), 4, rows=30, noise=0.0))
+    del columns["m_cold"]
+    without, with_loss = (resistances(chain, columns, loss) for loss in (0.0, 0.06))
+    assert with_loss.coefficient == pytest.approx(0.94 * without.coefficient, rel=1e-13)
+    assert np.isnan(with_loss.closure).all()
+    # No limit of a balance that is not there.
+    assert not {limit.id for limit, _ in with_loss.outside} & {"heat balance", "good heat balance"}
+    moved = slopes(chain, columns, 0.06)[LOSS]
+    assert moved == pytest.approx(1.0 / (with_loss.coefficient * 0.94), rel=1e-12)
+    _, steps = worked(chain, {name: figures[:1] for name, figures in columns.items()}, 0.06)
+    assert [step.symbol for step in steps] == ["Q_h", "Q_c", "Q", "U", "R_f"]
+    assert relations_of(chain).startswith("Q_h = Q_hot·(1 − x); Q_c = Q_h; Q = ")
+
+
+def test_a_loss_of_the_hot_stream_does_not_act_on_the_heat_of_the_cold_one(tmp_path: Path) -> None:
+    """What the water takes up has passed the wall."""
+    path = tmp_path / "trial.yaml"
+    path.write_text(STEAM.split("survey:")[0], encoding="utf-8")
+    chain = solve(read(path)).chain
+    columns = {
+        "T_ci": np.full(3, 303.15),
+        "T_co": np.array([325.0, 327.0, 329.0]),
+        "m_cold": np.full(3, 18.0),
+    }
+    without, with_loss = (resistances(chain, columns, loss) for loss in (0.0, 0.06))
+    assert (with_loss.coefficient == without.coefficient).all()
+    assert (slopes(chain, columns, 0.06)[LOSS] == 0.0).all()
+    assert relations_of(chain).startswith("Q_h = Q_c; Q = ")
 
 
 def test_parallel_flow_is_crossed_where_counterflow_is_not(tmp_path: Path, solved: Solved) -> None:

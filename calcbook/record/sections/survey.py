@@ -89,7 +89,7 @@ def _rows(outcome: SurveyOutcome) -> list[Block]:
     )
     relations = (
         "Each row kept goes through the chain above, clean, at its own flows and temperatures:"
-        f" {outcome.row_relations}, where Q_hot is what the hot stream gives and x the heat loss. R_f is that of all"
+        f" {outcome.row_relations}{_of_heat(outcome.row_relations)}. R_f is that of all"
         " deposits of both sides together; where another calculation takes it, it stands for all of them."
     )
     many = [Paragraph(f"Caution: {line}") for line in _many_rejected(outcome)]
@@ -102,6 +102,13 @@ def _rows(outcome: SurveyOutcome) -> list[Block]:
         Paragraph(relations),
         *_worked(outcome.worked),
     ]
+
+
+def _of_heat(relations: str) -> str:
+    """What the heat of a row is, after its relations."""
+    if "Q_hot" in relations:
+        return ", where Q_hot is what the hot stream gives and x the heat loss"
+    return ": the heat that is known has passed the wall, so a heat loss of the hot stream does not act"
 
 
 def _worked(row: WorkedRow) -> list[Block]:
