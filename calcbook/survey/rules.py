@@ -22,6 +22,9 @@ Array = np.ndarray
 UNREADABLE = "unreadable"
 SIGN_WORDS = {"positive": "above zero", "not negative": "zero or above", "any": "any number"}
 NOT_APPLIED = "not applied: no limit is stated"
+# A figure read from decimals is off by a half rounding each for its text, its factor and its offset: two such figures,
+# or one and a limit, by three roundings of the larger one. What stands at a limit by its text does not break it.
+ROUNDINGS = 3.0 * float(np.finfo(float).eps)
 FLOWS = frozenset(unit_factor(unit)[1] for unit in ("kg/s", "m^3/s", "m/s"))
 
 
@@ -113,7 +116,7 @@ def sift(rows: Rows, survey: Survey, ends: Ends, givens: Mapping[str, Input]) ->
         if column.low is None or column.high is None:
             sieve.reject(f"sensor range / {symbol}", f"{column.head} beyond its range", "", None)
             continue
-        outside = ~((figures >= column.low.value) & (figures <= column.high.value))
+        outside = _outside(figures, column.low.value, column.high.value)
         sieve.reject(
             f"sensor range / {symbol}",
             f"{column.head} beyond its range",
@@ -129,6 +132,12 @@ def sift(rows: Rows, survey: Survey, ends: Ends, givens: Mapping[str, Input]) ->
     _reject_unsteady(sieve, survey, ends)
     _reject_flows(sieve, survey, reference)
     return sieve
+
+
+def _outside(figures: Array, low: float, high: float) -> Array:
+    """Which figures lie outside two limits; NaN does."""
+    size = ROUNDINGS * np.maximum(np.abs(figures), max(abs(low), abs(high)))
+    return ~((figures >= low - size) & (figures <= high + size))
 
 
 def _can_be(item: Input) -> str:
@@ -196,7 +205,9 @@ def _reject_unsteady(sieve: Sieve, survey: Survey, ends: Ends) -> None:
     for symbol in ends.symbols:
         if symbol in sieve.rows.columns:
             marks = broken[survey.columns[symbol].head] = np.zeros(len(sieve.rows), dtype=bool)
-            marks[places[1:]] = near & (np.abs(np.diff(sieve.rows.columns[symbol][places])) > limit.value)
+            figures = sieve.rows.columns[symbol][places]
+            size = ROUNDINGS * np.maximum(np.abs(figures[1:]), np.abs(figures[:-1]))
+            marks[places[1:]] = near & (np.abs(np.diff(figures)) > limit.value + size)
     sieve.not_compared = len(places) - int(np.count_nonzero(near)) if len(places) else 0
     sieve.reject(name, rejects, f"at most {limit.text}", broken)
 
@@ -212,5 +223,5 @@ def _reject_flows(sieve: Sieve, survey: Survey, reference: Mapping[str, float]) 
             sieve.reject(name, rejects, "", None)
             continue
         ratio = figures / reference[symbol]
-        broken = ~((ratio >= limit[0].value) & (ratio <= limit[1].value))
+        broken = _outside(ratio, limit[0].value, limit[1].value)
         sieve.reject(name, rejects, f"{limit[0].text} to {limit[1].text}", broken)

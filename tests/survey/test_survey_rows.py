@@ -8,13 +8,14 @@ from pathlib import Path
 import numpy as np
 import pytest
 from history import DAY, Truth, cells, drawn, history, spoiled
-from survey_calculations import COOLER, SURVEY, solved_survey, surveyed_alone
+from survey_calculations import COOLER, SURVEY, solved_survey, surveyed_alone, write_history
 
 from calcbook.chain.outcome import Solved
 from calcbook.chain.survey_outcome import SurveyOutcome
 from calcbook.faults import Faults
-from calcbook.interface import record_text
-from calcbook.survey.rows import read_moments, read_numbers
+from calcbook.interface import read, record_text
+from calcbook.survey.rows import read_moments, read_numbers, read_rows
+from calcbook.survey.rules import Ends, sift
 
 TRUTH = Truth(errors=drawn(7))
 SPOILED_SURVEY = SURVEY.replace("steady state: 8 K", "steady state: 4.5 K")
@@ -299,3 +300,33 @@ def test_cleanings_that_are_not_those_of_the_data_are_a_caution(
     """The first cleaning typed ten years too early: its rows have nothing to anchor zero on."""
     solved = solved_survey(tmp_path, whole, SURVEY.replace("at: 2025-02-03", "at: 2015-02-03"))
     assert "of the kept rows are not fitted" in record_text(solved).partition("## 14.")[2]
+
+
+def test_a_reading_at_a_limit_by_its_text_does_not_break_it(tmp_path: Path, solved: Solved) -> None:
+    """Readings of a tenth of a kelvin that move by 0.3 K exactly, by 0.4 K where so marked; 122 and 32 degF at the ends
+    of their range; 43.2 t/h, six tenths of 20 kg/s. Decimals in kelvin are off by roundings (0.30000000000001)."""
+    rows, now, direction, farther = [], 420, 1, 0
+    for number in range(600):
+        step = 4 if number % 50 == 49 else 3
+        farther += step == 4
+        direction = 1 if now < 420 else -1 if now > 950 else direction
+        now += direction * step
+        flow = "43.2" if number % 2 else "100.8"
+        cold = "122" if number % 3 else "32"
+        stamp = str(np.datetime64("2025-02-03") + np.timedelta64(number, "h")).replace("T", " ")
+        rows.append([f"{stamp}:00", f"{now / 10:.1f}", "40.0", cold, cold, "18", flow])
+    survey = SURVEY.replace(
+        "steady state: 8 K, flow ratio: 0.6 .. 1.4", "steady state: 0.3 K, flow ratio: 0.6 .. 1.4"
+    )
+    survey = survey.replace("32 degF .. 176 degF", "32 degF .. 122 degF").replace(
+        "range: 7 t/h", "range: 43.2 t/h"
+    )
+    write_history(tmp_path, rows)
+    path = tmp_path / "trial.yaml"
+    path.write_text(COOLER + survey, encoding="utf-8")
+    text = read(path).survey
+    givens = {symbol: solved.chain.inputs[f"given/{symbol}"] for symbol in solved.chain.calculation.givens}
+    ends = Ends("T_hi", "T_ho", "", "", False)
+    sieve = sift(read_rows(text), text, ends, givens)
+    found = {rule.id: rule.count for rule in sieve.rules if rule.count}
+    assert found == {"steady state": farther}
