@@ -168,6 +168,7 @@ def source_of(solved: Solved) -> Source:
         results,
         len(solved.open_items),
         solved.chain.surfaces[solved.chain.basis].name,
+        {element.name: solved.chain.surfaces[element.surface].name for element in solved.chain.elements},
     )
 
 

@@ -24,13 +24,15 @@ DIGITS = 10
 
 @dataclass(frozen=True, slots=True)
 class Source:
-    """What a solved source gives: revision, digest, results by name (value, unit), open items, and the surface of U."""
+    """What a solved source gives: revision, digest, results by name (value, unit), open items, the surface of U, and the
+    surface of every term by its name."""
 
     revision: str
     digest: str
     results: Mapping[str, tuple[float, str]]
     open_items: int
     basis: str
+    surfaces: dict[str, str]
 
 
 Solve = Callable[[Path], Source]
@@ -81,7 +83,7 @@ class Links:
             source.digest,
             figure(value, unit),
             state,
-            surface_of(text.result, source.basis),
+            surface_of(text.result, source.basis, source.surfaces),
         )
 
     def _pinned(self, text: LinkText, file: Path | None) -> Link:
@@ -89,7 +91,9 @@ class Links:
         try:
             seal = read_seal(folder)
             altered = check_seal(folder)
-            results = json.loads((folder / RESULTS).read_text(encoding="utf-8"))["results"]
+            stated = json.loads((folder / RESULTS).read_text(encoding="utf-8"))
+            results = stated["results"]
+            surfaces = {row["name"]: row["surface"] for row in stated["conditions"]["clean"]}
         except (Faults, OSError, ValueError, KeyError, TypeError):
             raise _fault(
                 "link-revision-unknown",
@@ -121,7 +125,7 @@ class Links:
             digest,
             figure(value, unit),
             state,
-            surface_of(text.result, _basis_of(folder / CALCULATION)),
+            surface_of(text.result, _basis_of(folder / CALCULATION), surfaces),
         )
 
     def _result(self, text: LinkText, results: Mapping[str, tuple[float, str]]) -> tuple[float, str]:

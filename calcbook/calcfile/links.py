@@ -37,16 +37,29 @@ class Link:
     state: str
     on: str = ""
 
+    @property
+    def is_difference(self) -> bool:
+        """Whether the result, where it is in kelvin, is a difference of temperatures."""
+        return self.result == "LMTD" or self.result.startswith("dT ")
+
 
 # How the results of a survey begin: resistances of all deposits of a unit together, and how they grow.
 OF_A_SURVEY = ("allowance_", "fitted ")
+# And those that count on the surface of the term that they name.
+OF_A_DEPOSIT, OF_A_FILM = "largest_allowance", "h"
 
 
-def surface_of(result: str, basis: str) -> str:
-    """The surface that a result counts on, by its name: ``basis`` for most; empty where it counts on none or its own."""
+def surface_of(result: str, basis: str, terms: dict[str, str]) -> str:
+    """The surface that a result counts on, by its name: ``basis`` for most, its own for those of ``terms`` (surfaces by
+    name of a term); empty where it counts on none."""
     name, _, surface = result.partition(" on ")
     if name in ("U_service", "U_clean"):
         return surface or basis
+    kind, _, term = result.partition(" ")
+    if kind == OF_A_DEPOSIT:
+        return terms.get(term, "")
+    if kind == OF_A_FILM:
+        return terms.get(term.rpartition(" ")[0], "")
     return basis if result.startswith(("R ", *OF_A_SURVEY)) else ""
 
 

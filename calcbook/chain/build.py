@@ -96,8 +96,13 @@ class _Builder:
             else None
         )
         self._check_temperatures(elements)
-        surfaces = {element.name: shape.surfaces[element.surface].name for element in elements or ()}
-        check_linked_resistances(scope, calculation, surfaces)
+        # A stated figure counts on the surface that it names, which need not be the one that its element acts on.
+        places = {element.name: element.surface for element in elements or ()}
+        named = shape.names()
+        places |= {term.name: named[on] for term in terms if (on := term.texts.get("on", "")) in named}
+        check_linked_resistances(
+            scope, calculation, {name: shape.surfaces[place].name for name, place in places.items()}
+        )
         open_words(scope)
         check_services(calculation, self.collector)
         if self.collector or basis is None or elements is None:

@@ -1,4 +1,4 @@
-"""Resistances that a calculation takes from another: the surface they count on there, and what they stand for."""
+"""Resistances and coefficients that a calculation takes from another: the surface they count on, what they stand for."""
 
 from __future__ import annotations
 
@@ -11,7 +11,7 @@ from calcbook.library import vocabulary
 
 
 def check_linked_resistances(scope: Scope, calculation: Calculation, surfaces: Mapping[str, str]) -> None:
-    """Open items for a resistance that acts on another surface than where it comes from, and for the resistance of all
+    """Open items for a figure that acts on another surface than where it comes from, and for the resistance of all
     deposits of a unit that stands beside others. ``surfaces`` are the names by term."""
     linked = _Linked(calculation)
     terms = calculation.resistances
@@ -23,7 +23,8 @@ def check_linked_resistances(scope: Scope, calculation: Calculation, surfaces: M
                 f"{term.name}/linked surface",
                 "link",
                 f"{term.name} takes {link.result} from {link.calculation}, which counts on the surface"
-                f" {link.on} there, and acts on {here}: the same deposit has another resistance on it.",
+                f" {link.on} there, and acts on {here}: the same {_what(term)} has another"
+                f" {'coefficient' if 'coefficient' in term.values else 'resistance'} on it.",
             )
         others = [other for other in terms if other is not term and linked.adds_fouling(other)]
         for link in linked.behind(term):
@@ -85,9 +86,11 @@ class _Linked:
         return any(item.quantity is None or item.quantity.value != 0.0 for item in stated)
 
 
+def _what(term: Term) -> str:
+    return {"fouling": "deposit", "stated": "term"}.get(term.kind, term.kind)
+
+
 def _figures(term: Term) -> list[Value]:
     """The figures that the resistance of a term rests on."""
     own = [term.values[key] for key in ("resistance", "coefficient") if key in term.values]
-    if term.kind != "fouling":
-        own = []
     return [*own, *(term.growth.values.values() if term.growth is not None else ())]

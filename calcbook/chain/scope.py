@@ -253,13 +253,30 @@ class Scope:
             *(case[given.symbol] for case in self.calculation.cases.values() if given.symbol in case),
         ):
             reading = self._as_kind(one.value, kind, f"{owner}, {key}")
-            if reading is None:
+            if reading is None or self._is_linked_otherwise(one, kind):
                 return ""
             gauge = gauge or (reading if reading == "gauge" else "")
             self._say_reading(reading, one.value, f"given {one.symbol}")
         self.kinds.setdefault(given.symbol, kind)
         name = f"given/{given.symbol}"
         return self._above_site(name, owner, owner) if gauge else name
+
+    def _is_linked_otherwise(self, given: Given, kind: QuantityKind) -> bool:
+        """Whether a given takes a temperature where a difference is wanted, or the reverse; then it is a fault."""
+        link, is_point = given.link, kind.scale == "point"
+        if link is None or kind.dimension != vocabulary()["temperature"].dimension:
+            return False
+        if link.is_difference != is_point:
+            return False
+        names = ("temperature", "temperature difference")
+        self.collector.add(
+            "unit-dimension",
+            given.value.place,
+            f"{link.result} of {link.calculation} is a {names[link.is_difference]}",
+            found=shown(given.symbol),
+            expected=f"a {names[not is_point]}",
+        )
+        return True
 
     def _literal(self, value: Value, kind: QuantityKind, owner: str, key: str) -> str:
         reading = self._as_kind(value, kind, f"{owner}, {key}")

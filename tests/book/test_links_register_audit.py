@@ -22,6 +22,8 @@ GOOD = (Path(__file__).resolve().parents[2] / "calcs/wc-101.yaml").read_text(enc
 HOT = (
     "T_hot:  {value: 74 degC,   is: mean hot temperature,   source: heat balance sheet 12, tolerance: 0.5 K}"
 )
+FILM = "{name: T, kind: film, coefficient: X, on: %s, temperature: T_hot}"
+STATED = "{name: T, kind: stated, resistance: X, on: %s}"
 FED = "T_hot:  {from: {calculation: S-1, result: T inside surface service}, is: surface of the source}"
 
 
@@ -79,6 +81,61 @@ def test_an_allowance_on_another_surface_is_an_open_item(revision: str, told: st
     path.write_text("\n".join(lines), encoding="utf-8")
     items = {item.id: item.text for item in solve_file(path).open_items}
     assert "counts on the surface outside there, and acts on inside" in items[name], told
+
+
+@pytest.mark.parametrize("pin", ["", ", revision: A"])
+@pytest.mark.parametrize(
+    ("result", "term", "right", "wrong", "here"),
+    [
+        ("h tube-side film service", FILM, "inside", "outside", "outside"),
+        ("U_service", FILM, "outside", "inside", "inside"),
+        ("R tube wall service", STATED, "outside", "inside", "inside"),
+    ],
+)
+def test_a_figure_on_another_surface_is_an_open_item_whatever_term_takes_it(
+    result: str, term: str, right: str, wrong: str, here: str, pin: str, tmp_path: Path
+) -> None:
+    """A coefficient of 1 m2 of the inside is d_i/d_o of it on 1 m2 of the outside: common practice."""
+    calcs, output = tmp_path / "calcs", tmp_path / "output"
+    shutil.copytree(ROOT / "calcs", calcs)
+    shutil.copytree(ROOT / "output" / "WC-101" / "issued", output / "WC-101" / "issued")
+    path = calcs / "wc-102.yaml"
+    text = path.read_text(encoding="utf-8")
+    text = text.replace("result: h tube-side film service, revision: A", f"result: {result}{pin}")
+    text = text.replace("  h_i:\n", "  X:\n")
+    film = next(line for line in text.split("\n") if "coefficient: h_i" in line)
+    for surface, found in ((right, False), (wrong, True)):
+        lines = text.split("\n")
+        own = "  - " + term % surface
+        stated = "  - {name: in, kind: film, coefficient: {value: 9000 W/(m^2 K), source: test}, on: inside, temperature: T_hot}"
+        place = lines.index(film)
+        lines[place : place + 1] = [own] if "film" in term else [stated, own]
+        path.write_text("\n".join(lines), encoding="utf-8")
+        items = {item.id: item.text for item in solve_file(path).open_items}
+        assert ("T/linked surface" in items) is found
+    source = {"inside": "outside", "outside": "inside"}[here]
+    assert f"counts on the surface {source} there, and acts on {here}" in items["T/linked surface"]
+
+
+@pytest.mark.parametrize(("result", "told"), [("LMTD", True), ("T_hot_outlet", False)])
+def test_a_difference_of_temperatures_is_no_temperature(result: str, told: bool, tmp_path: Path) -> None:
+    shutil.copytree(ROOT / "calcs", tmp_path / "calcs")
+    path = tmp_path / "calcs" / "wc-102.yaml"
+    text = path.read_text(encoding="utf-8")
+    hot = next(line for line in text.split("\n") if line.startswith("  T_hot:"))
+    linked = f"  T_hot: {{from: {{calculation: WC-105, result: {result}}}, is: linked}}"
+    text = text.replace(hot, linked).replace(
+        "result: h tube-side film service, revision: A", "result: h tube-side film service"
+    )
+    path.write_text(text, encoding="utf-8")
+    if not told:
+        assert solve_file(path).base.inputs["given/T_hot"] == pytest.approx(341.95, abs=0.5)
+        return
+    with pytest.raises(Faults) as caught:
+        solve_file(path)
+    (fault,) = caught.value.faults
+    assert fault.code == "unit-dimension"
+    assert fault.message == "LMTD of WC-105 is a temperature difference"
 
 
 def test_a_source_that_is_not_pinned_or_preliminary_is_an_open_item(book: Path) -> None:
