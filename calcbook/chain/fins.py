@@ -422,8 +422,9 @@ class _Series:
                 self._check(
                     "plain surface",
                     "A_tf/A <= 1",
-                    "caution",
-                    f"the methods of {situation.id} are for a surface without fins",
+                    "range",
+                    f"the methods of {situation.id} are for a surface without fins: its film, speed and pressure drop"
+                    " leave out what the fins take of the flow area",
                     figures,
                 )
             )

@@ -247,11 +247,11 @@ def test_fins_without_height_are_no_fins(tmp_path):
     assert finned.number("circuit/UA") == pytest.approx(bare.number(chain.results["UA"]), rel=1e-3)
 
 
-def test_a_method_for_plain_tubes_is_cautioned(tmp_path):
+def test_a_method_for_plain_tubes_is_an_open_item(tmp_path):
     chain_of(tmp_path, finned_tube(ACROSS))
     checks = {check.id: check for check in solve_file(tmp_path / "trial.yaml").base.checks}
     check = checks["fins of air film / fins / plain surface"]
-    assert (check.level, check.state) == ("caution", "outside")
+    assert (check.level, check.state) == ("range", "outside")
 
 
 def test_the_film_of_a_finned_bank_takes_its_figures_from_the_fins(tmp_path):
