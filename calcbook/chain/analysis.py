@@ -712,6 +712,13 @@ def criterion_figures(
     return found
 
 
+def limit_at(chain: Chain, criterion: Criterion, kind: QuantityKind, solution: Solution) -> Array:
+    """The limit of a criterion whose own record has shown no fault in it, at every sample."""
+    limit = _Analysis(chain, Collector()).limit_of(criterion, kind, solution)
+    assert limit is not None, "its record was made"
+    return limit
+
+
 def clean_surface_criteria(
     chain: Chain, solution: Solution, ends: tuple[EndState, ...], state: str
 ) -> tuple[CriterionResult, ...]:

@@ -276,7 +276,8 @@ def _criteria(
         codes = np.where(item.met, 0, 1)
         # A state of day one that is not there does not meet what is asked of it.
         absent = 1 if item.criterion.result in OF_DAY_ONE else NO_VERDICT
-        codes = np.where(np.isfinite(item.margin), codes, absent)
+        # A margin that has no end is one all the same: of a duty that is carried to the end, or never.
+        codes = np.where(np.isnan(item.margin), absent, codes)
         yield Verdicts(
             CRITERION, f"criterion {item.number}", "", MET_WORDS, codes, _fixed_margins(item.margin)
         )

@@ -103,7 +103,7 @@ def _named(solved: Solved, name: str) -> Result:
     known = solved.base.results.get(name)
     if known is not None:
         return known
-    kind, title = OF_DAY_ONE[name]
+    kind, title = OF_DAY_ONE.get(name, ("service time", "time in service until the duty is lost"))
     return Result(name, np.nan, vocabulary()[kind], title)
 
 
@@ -115,7 +115,7 @@ def _result(solved: Solved, result: Result, samples: Samples) -> SweptResult:
         if len(samples.solved)
         else np.full(samples.missing.shape, np.nan)
     )
-    values = np.where(samples.missing == 0, values, np.nan)
+    values = np.where((samples.missing == 0) & np.isfinite(values), values, np.nan)
     stated = [(item, solved.chain.calculation.criterion(item.id)) for item in solved.base.criteria]
     limits = tuple(
         (item.id, item.limit)

@@ -169,3 +169,64 @@ def test_a_margin_summed_over_parts_is_not_sampled_where_the_file_has_none(tmp_p
     with pytest.raises(Faults) as told:
         solved(tmp_path, text)
     assert any("only where the file has `parts:`" in fault.message for fault in told.value.faults)
+
+
+# --- the time until the duty is lost -------------------------------------------------------------------------
+
+HR_821 = Path(__file__).resolve().parents[2] / "calcs/hr-821.yaml"
+
+
+def growing(folder: Path, symbol: str, figure: str, case: str = ""):
+    """HR-821 as a file of its own with another figure of a given, in the base case or in the other one; its table is
+    short, and its cleaning, which no time until the duty is lost hangs on, is left out."""
+    text, _, rest = (
+        HR_821.read_text(encoding="utf-8").replace("steps: 13", "steps: 2").partition("cleaning:\n")
+    )
+    text += rest[rest.index("report:\n") :]
+    lines = [line for line in text.splitlines() if line.strip().startswith(f"{symbol}:")]
+    line = lines[-1] if case and symbol == "t_after" else lines[0]
+    present = line.split("value: ")[1].split(",")[0]
+    return solved(folder, text.replace(line, line.replace(present, figure)))
+
+
+def test_every_flip_of_the_time_until_the_duty_is_lost_holds_in_a_file_of_its_own(tmp_path: Path) -> None:
+    flips = solve_file(HR_821).flips
+    assert flips is not None and not flips.left_out
+    of_time = [one for one in flips.of_kind("criterion") if one.id == "criterion 3"]
+    assert len(of_time) > 20
+    for flip in of_time:
+        verdicts = []
+        for figure in (flip.printed, flip.printed_inside):
+            answer = growing(tmp_path, flip.input.symbol, f"{figure!r} {flip.unit}".strip(), flip.case)
+            case = next(one for one in answer.cases if one.name == flip.case)
+            verdicts.append(next(item.met for item in case.criteria if item.id == "criterion 3"))
+        assert verdicts == [flip.becomes == "met", flip.was == "met"], flip.input.symbol
+
+
+def test_a_sweep_of_the_time_until_the_duty_is_lost_is_that_of_files_of_their_own(tmp_path: Path) -> None:
+    """At 10 kg/s it is carried through the two years looked at, at 20 kg/s not even by the cleaned unit."""
+    sweep = "sweep:\n  m_h: {from: 10 kg/s, to: 20 kg/s, steps: 6}\n  of: [time_until_duty_lost]\n"
+    answer = recorded(tmp_path, HR_821.read_text(encoding="utf-8") + sweep)
+    assert answer.sweep is not None
+    (found,) = answer.sweep.results
+    expected = []
+    for flow in (10, 12, 14, 16, 18, 20):
+        alone = growing(tmp_path, "m_h", f"{flow} kg/s").base.results
+        name = "time_until_duty_lost"
+        expected.append(alone[name].value if name in alone else float("nan"))
+    assert 2 <= sum(np.isfinite(expected)) < 6
+    # The record takes a straight line over a part of 40^-6 of the two years.
+    assert found.values == pytest.approx(expected, rel=1e-8, nan_ok=True)
+
+
+def test_a_duty_that_is_carried_to_the_end_or_never_is_not_unknown(tmp_path: Path) -> None:
+    answer = growing(tmp_path, "m_h", "14 kg/s")
+    inputs = dict(answer.chain.case_inputs(""))
+    inputs["given/m_h"] = np.array([8.0, 14.0, 40.0])
+    later = AtSamples(answer, {"time_until_duty_lost"})
+    found = evaluate_samples(answer.chain, inputs, later=later)
+    never, lost, at_once = found.results["time_until_duty_lost"].values
+    assert (never, at_once) == (np.inf, -np.inf)
+    assert lost == pytest.approx(answer.base.results["time_until_duty_lost"].value, rel=1e-8)
+    codes = found.codes(("criterion", "criterion 3", ""))
+    assert codes.tolist() == [0, 0, 1]
