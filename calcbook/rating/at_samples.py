@@ -35,14 +35,16 @@ def names_at_samples(solved: Solved) -> frozenset[str]:
     if chain.calculation.duty is None or "duty" not in chain.results:
         return frozenset()
     parts = OF_PARTS if chain.calculation.duty.parts > 1 else ()
-    return frozenset((*parts, *_moved(chain), *_lost(chain)))
+    lost = (DUTY_LOST,) if finds_duty_lost(chain) else ()
+    return frozenset((*parts, *_moved(chain), *lost))
 
 
-def _lost(chain: Chain) -> tuple[str, ...]:
-    """The time until the duty is lost, where a growth is followed over time and no criterion asks for an early loss."""
-    follows = "until" in chain.in_service and "area margin" in chain.results and chain.growing
-    asked = [item for item in chain.calculation.acceptance if item.result == DUTY_LOST]
-    return (DUTY_LOST,) if follows and all(item.direction > 0.0 for item in asked) else ()
+def finds_duty_lost(chain: Chain) -> bool:
+    """Whether samples show when the duty is lost: a growth is followed over time, and no criterion asks for an early
+    loss."""
+    asked = (item for item in chain.calculation.acceptance if item.result == DUTY_LOST)
+    follows = "until" in chain.in_service and "area margin" in chain.results and bool(chain.growing)
+    return follows and all(item.direction > 0.0 for item in asked)
 
 
 def _moved(chain: Chain) -> tuple[str, ...]:

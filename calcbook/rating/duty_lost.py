@@ -51,6 +51,13 @@ def times_until_lost(chain: Chain, inputs: Mapping[str, Array], until: Array) ->
     return found
 
 
+def carried_until(chain: Chain, inputs: Mapping[str, Array], times: Array) -> Array:
+    """Whether the duty is carried at a time of every sample, as what may be compared with it: infinite where it is, minus
+    infinite where it is lost by then, NaN where the circuit does not close. Fouling only grows on the way there."""
+    margins = _margins(chain, inputs, times, np.arange(len(times)))
+    return np.where(np.isnan(margins), np.nan, np.where(margins > 0.0, np.inf, -np.inf))
+
+
 def _margins(chain: Chain, inputs: Mapping[str, Array], times: Array, samples: Array) -> Array:
     """The margin of some samples at times since the cleaning of every growing term; NaN without an answer."""
     margin = chain.results["area margin"]

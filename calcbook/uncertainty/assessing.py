@@ -11,7 +11,7 @@ import numpy as np
 from calcbook.calcfile.calculation import Criterion
 from calcbook.calcfile.uncertainty import USUAL_COVERAGE, UncertaintyText
 from calcbook.chain.along import OF_PARTS
-from calcbook.chain.analysis import is_found_later
+from calcbook.chain.analysis import DUTY_LOST, is_found_later, keeps_what_is_found_later
 from calcbook.chain.completing import completed
 from calcbook.chain.criteria import criterion_margin, is_met
 from calcbook.chain.ends import EndState, closed_ends, end_slopes, end_states
@@ -34,6 +34,8 @@ from calcbook.chain.uncertainty_outcome import (
     Uncertainty,
 )
 from calcbook.faults import Collector, nearest_names, shown
+from calcbook.rating.at_samples import finds_duty_lost
+from calcbook.rating.duty_lost import carried_until
 from calcbook.uncertainty.budget import (
     Correlations,
     correlation_matrix,
@@ -159,7 +161,9 @@ def _elsewhere(
         budgets = one.budgets(is_wide=False)
         found += one.spreads(budgets)
         unsure = [
-            row.id for row in case.criteria if not math.isnan(chain.calculation.criterion(row.id).probability)
+            f"criterion {number}"
+            for number, item in enumerate(chain.calculation.acceptance, 1)
+            if not math.isnan(item.probability)
         ]
         if unsure and asked is not None:
             chances += one.chances(budgets, unsure)
@@ -410,13 +414,17 @@ class _Assessment:
         for number, item in enumerate(self.chain.calculation.acceptance, 1):
             if not is_found_later(item.result):
                 continue
-            summed = self._of_parts(f"criterion {number}", item)
-            if summed is None:
+            later = self._of_parts(f"criterion {number}", item) or self._of_time(f"criterion {number}", item)
+            if later is None:
                 not_sampled.append(item.text)
                 continue
-            statements.append(summed)
-            margin_now = criterion_margin(item, self._named(item.result).value, summed.limit)
-            texts[summed.id] = (item.text, bool(is_met(item, margin_now)), item.probability)
+            statements.append(later)
+            now = self._found_later(item, later.limit)
+            texts[later.id] = (
+                item.text,
+                bool(is_met(item, criterion_margin(item, now, later.limit))),
+                item.probability,
+            )
         for row in self.case.criteria:
             item = self.chain.calculation.criterion(row.id)
             result = measured(self.chain, item.result)
@@ -438,6 +446,19 @@ class _Assessment:
         """A criterion over the area summed over parts, which samples show in the case that has it; None for another."""
         if item.result not in OF_PARTS or item.result not in self.case.results:
             return None
+        return self._statement(name, item, item.result)
+
+    def _of_time(self, name: str, item: Criterion) -> Statement | None:
+        """A criterion over the time until the duty is lost, in a case that has that of the base case; None for another."""
+        has_time = finds_duty_lost(self.chain) and keeps_what_is_found_later(self.chain, self.case.name)
+        return (
+            self._statement(name, item, f"{name}/{DUTY_LOST}")
+            if item.result == DUTY_LOST and has_time
+            else None
+        )
+
+    def _statement(self, name: str, item: Criterion, figure: str) -> Statement:
+        """The statement of a criterion over a ``figure`` that stands beside those of the chain in service."""
         step = self._limit_step(item.limit.symbol)
         if step:
             limit = self.case.solutions[SERVICE].number(step)
@@ -445,8 +466,15 @@ class _Assessment:
             assert item.limit.quantity is not None, "a limit is a symbol or a quantity"
             limit = item.limit.quantity.value
         return Statement(
-            name, Measured(item.result, PLAIN, {"y": (SERVICE, item.result)}), item.operator, limit, step
+            name, Measured(item.result, PLAIN, {"y": (SERVICE, figure)}), item.operator, limit, step
         )
+
+    def _found_later(self, item: Criterion, limit: float) -> float:
+        """The value at the stated figures of what is found later; of a time whether it lies beyond the limit."""
+        if item.result != DUTY_LOST:
+            return self._named(item.result).value
+        inputs = self.chain.case_inputs(self.case.name)
+        return float(carried_until(self.chain, inputs, np.array([limit]))[0])
 
     def _limit_step(self, symbol: str) -> str:
         if not symbol:

@@ -10,6 +10,7 @@ import numpy as np
 
 from calcbook.chain.about_state import about_state
 from calcbook.chain.along import OF_PARTS
+from calcbook.chain.analysis import DUTY_LOST
 from calcbook.chain.checks import NOT_EVALUABLE, OUTSIDE, check_states
 from calcbook.chain.completing import completed
 from calcbook.chain.ends import OPEN_END, PLACES, end_states, has_ends
@@ -19,6 +20,7 @@ from calcbook.chain.samples import Samples, mark_derived, mark_directions, mark_
 from calcbook.chain.solve import UNKNOWNS, Solution, closed, conditions_of, solve_both
 from calcbook.chain.types import CONDITIONS, SERVICE, Branch, Chain, ChainCheck, Group, Layer, StreamState
 from calcbook.properties import FluidAtPressure
+from calcbook.rating.duty_lost import carried_until
 from calcbook.rating.parts import parts_at_samples, what_parts_take
 from calcbook.uncertainty.figures import has_floor
 from calcbook.uncertainty.sampling import Sampled
@@ -302,6 +304,7 @@ class ChainModel:
         self.sums_parts = any(statement.result.name in OF_PARTS for statement in statements)
         if self.sums_parts:
             self.keep |= what_parts_take(chain)
+        self.of_time = tuple(one for one in statements if one.result.name == DUTY_LOST)
         if self.looks_at_ends:
             self.keep |= {UNKNOWNS, *(bound for name in chain.streams for _, bound in ends_of(chain, name))}
 
@@ -345,6 +348,12 @@ class ChainModel:
         if self.sums_parts:
             summed = parts_at_samples(self.chain, whole, solutions[SERVICE])
             solutions[SERVICE].values.update({name: values for name, values, _, _ in summed})
+        for statement in self.of_time:
+            # The verdict alone is wanted: whether the duty is carried at the time that is asked for.
+            service = solutions[SERVICE]
+            limit = service.values[statement.limit_step] if statement.limit_step else statement.limit
+            times = np.array(np.broadcast_to(limit, (size,)), dtype=float)
+            service.values[statement.result.parts["y"][1]] = carried_until(self.chain, inputs, times)
         return self._sampled(solutions, places, possible, size)
 
     def _closed(self, whole: Mapping[str, Array], size: int) -> dict[str, Solution]:

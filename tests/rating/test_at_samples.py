@@ -230,3 +230,23 @@ def test_a_duty_that_is_carried_to_the_end_or_never_is_not_unknown(tmp_path: Pat
     assert lost == pytest.approx(answer.base.results["time_until_duty_lost"].value, rel=1e-8)
     codes = found.codes(("criterion", "criterion 3", ""))
     assert codes.tolist() == [0, 0, 1]
+
+
+def test_how_sure_the_time_until_the_duty_is_lost_is_follows_from_the_margin_at_that_time(
+    tmp_path: Path,
+) -> None:
+    """Fouling only grows here: the duty is carried for 4 and for 12 months where the margin then is above zero, in each
+    sample. That margin is another criterion of the same file, on the same samples."""
+    text = HR_821.read_text(encoding="utf-8").replace("steps: 13", "steps: 2")
+    for criterion in ("area_margin >= 0", "time_until_duty_lost >= t_after"):
+        assert f"{criterion}, source" in text
+        text = text.replace(f"{criterion}, source", f"{criterion}, probability: 90 %, source")
+    text = text.replace("\nreport:\n", "\nuncertainty: {of: [area_margin]}\n\nreport:\n")
+    answer = solved(tmp_path, text)
+    shares = {(case.name, row.id): row.reached for case in answer.cases for row in case.criteria}
+    for case in ("", "yearly cleaning"):
+        assert shares[case, "criterion 3"] == shares[case, "criterion 1"]
+    assert 0.5 < shares["yearly cleaning", "criterion 3"] < 0.9 < shares["", "criterion 3"]
+    verdicts = {case.name: {row.id: row.met for row in case.criteria} for case in answer.cases}
+    assert verdicts[""]["criterion 3"] and not verdicts["yearly cleaning"]["criterion 3"]
+    assert not [item for item in answer.open_items if "not worked out" in item.text]
