@@ -129,6 +129,13 @@ def test_a_boiling_stream_is_raised(tmp_path: Path) -> None:
             "does not carry the duty: it is 40.2 % short",
         ),
         (COOLER.replace("duty:\n", "duty:\n  throttled: cold\n"), "shell-side film is stated"),
+        (
+            # Half a kelvin off water that comes 50 K hotter than the other: 1 % of its flow would do.
+            COOLER.replace("duty:\n", "duty:\n  throttled: hot\n")
+            .replace("value: 70 degC", "value: 77.5 degC")
+            .replace("value: 34.6 degC", "value: 27.95 degC"),
+            "the clean unit carries the duty at 2 % of the hot flow still",
+        ),
     ],
 )
 def test_a_unit_that_cannot_be_turned_down_says_why(tmp_path: Path, text: str, reason: str) -> None:
@@ -180,6 +187,31 @@ def test_every_case_has_its_own_day_one(tmp_path: Path) -> None:
     assert "day one, turned down, case summer: p = " in page
 
 
+OPEN_INLET = COOLER.replace("duty:\n", "duty:\n  throttled: hot\n").replace("value: 4.88 m", "value: 6 m")
+
+
+def test_an_open_inlet_stays_where_it_was_found_in_each_case(tmp_path: Path) -> None:
+    """The inlet follows from the heat of the other stream; with what was found stated, a file of its own does the same."""
+    case = "cases:\n  warmer: {T_co: {value: 36 degC, source: s}}\n"
+    given = "  T_hi:  {value: 78 degC,   is: hot in,   source: s}\n"
+    assert OPEN_INLET.count(given) == 1
+    text = OPEN_INLET.replace("inlet: T_hi, outlet: T_ho", "outlet: T_ho").replace(given, "")
+    answer = solved(tmp_path, text + case)
+    assert answer.rating is not None and list(answer.rating.answered) == ["", "warmer"]
+    heats = []
+    for one, outlet in zip(answer.cases, ("34.6 degC", "36 degC"), strict=True):
+        inlet = one.results["T_hot_inlet"].value
+        stated = OPEN_INLET.replace("value: 78 degC", f"value: {inlet!r} K").replace("34.6 degC", outlet)
+        alone, found = day_of(solved(tmp_path, stated)), answer.rating.answered[one.name]
+        for here, there in ((found.service, alone.service), (found.clean, alone.clean)):
+            assert here.heat == pytest.approx(there.heat, rel=1e-9)
+        assert found.turned_down is not None and alone.turned_down is not None
+        flows = [state.sides["hot"].mass_flow for state in (found.turned_down, alone.turned_down)]
+        assert flows[0] == pytest.approx(flows[1], rel=1e-9)
+        heats.append(found.clean.heat)
+    assert heats[1] > 1.01 * heats[0]
+
+
 # --- opposite a stream that changes phase ---------------------------------------------------------------
 
 
@@ -228,6 +260,10 @@ def test_the_flow_beside_a_saturated_stream_is_turned_down_until_the_unit_gives_
         (CHILLER, "cold", "saturation temperature"),
         (CHILLER.replace("ammonia", "n-pentane"), "hot", "flow"),
         (CHILLER.replace("ammonia", "R134a"), "cold", "saturation temperature"),
+        # Refrigerants R 744, and one whose number has a C for its ring (ISO 817); water is chilled by others.
+        (CHILLER.replace("ammonia", "carbon dioxide"), "cold", "saturation temperature"),
+        (CHILLER.replace("ammonia", "RC318"), "cold", "saturation temperature"),
+        (CHILLER.replace("ammonia", "water").replace("-4 degC", "2 degC"), "hot", "flow"),
         (COOLER, "cold", "flow"),
     ],
 )
@@ -375,7 +411,9 @@ def test_a_unit_that_gives_the_duty_does_not_lack_area_by_rounding(tmp_path: Pat
 def test_a_heater_that_could_do_with_steam_as_cold_as_the_water_says_so(tmp_path: Path) -> None:
     """In 20 m the clean unit gives the duty even at 99.9 % of the way to the water's outlet, where the search ends."""
     day = day_of(solved(tmp_path, HEATER.replace("2.44 m", "20 m")))
-    assert day.turned_down is None and day.no_turn_down
+    assert day.turned_down is None
+    words = "the clean unit carries the duty with 0.100 % of the temperature difference still"
+    assert day.no_turn_down == words
 
 
 def test_a_gauge_limit_of_an_absolute_pressure_is_a_fault(tmp_path: Path) -> None:
