@@ -10,7 +10,7 @@ from history import DAY
 
 from calcbook.faults import Collector, Place
 from calcbook.library import Library
-from calcbook.survey.fitting import Data, Fit, fit
+from calcbook.survey.fitting import Data, Fit, _neighbours_alike, fit
 from calcbook.survey.growth import GrowthModel, growth_model
 
 PLACE = Place("trial.yaml")
@@ -61,6 +61,8 @@ def test_known_parameters_come_back_without_noise(name: str) -> None:
         GROWTH[name][0], rel=1e-9
     )
     assert found.deviation < 1e-15
+    # What is left is rounding, which says nothing of neighbours.
+    assert found.correlation == 0.0
 
 
 @pytest.mark.parametrize("name", GROWTH)
@@ -89,6 +91,57 @@ def test_rows_that_wander_together_widen_the_scatter() -> None:
     found = fitted("fouling-linear", rows)
     # The correlation of 300 such rows is known to about sqrt(1 - 0.6**2)/sqrt(300) = 0.05; three times that.
     assert found.correlation == pytest.approx(0.6, abs=0.15)
+
+
+def test_the_covariance_of_rows_that_wander_together_is_that_of_repeated_draws() -> None:
+    """Each row takes 0.6 of what the row before is off: neighbours are alike by 0.6, and one draw stands for four."""
+    draw = np.random.default_rng(2)
+    plain, draws = rows_of("fouling-linear"), []
+    for _ in range(60):
+        wander = draw.standard_normal(len(plain))
+        for number in range(1, len(wander)):
+            wander[number] += 0.6 * wander[number - 1]
+        draws.append(
+            fitted(
+                "fouling-linear", Data(plain.times, plain.values + 4e-6 * wander, plain.cycles, plain.zero)
+            )
+        )
+    apart = np.std([found.parameters[0] for found in draws])
+    stated = np.mean([np.sqrt(found.scatter[0, 0]) for found in draws])
+    # As above, three times 9 %; without the correlation the stated one would be half of it.
+    assert apart / stated == pytest.approx(1.0, abs=0.27)
+
+
+def test_the_covariance_of_four_rows_by_hand() -> None:
+    """Times 0, 1, 2, 3 s, zero on the first two: s = t - 0.5, sum of s² = 9, sum of s = 4. The slope takes s/9 of every
+    row, and 4/9/2 of either that anchors zero are taken off: (-2.5, -1.5, 1.5, 2.5)/9, squares 17/81."""
+    times, zero = np.arange(4.0), np.array([True, True, False, False])
+    data = Data(times, 1e-6 * times + 1e-8 * np.array([1.0, -1.0, -1.0, 1.0]), np.zeros(4, int), zero)
+    found = fit(model_of("fouling-linear"), data)
+    # Four rows less one parameter and one zero.
+    assert found.deviation == pytest.approx(np.sqrt(np.sum(found.residuals**2) / (4 - 1 - 1)), rel=1e-12)
+    alike = (1.0 + found.correlation) / (1.0 - found.correlation)
+    assert found.scatter[0, 0] == pytest.approx(17.0 / 81.0 * found.deviation**2 * alike, rel=1e-12)
+
+
+@pytest.mark.parametrize(
+    ("residuals", "cycles", "correlation"),
+    [
+        # Two pairs of neighbours within cycles, of a sum of squares of four.
+        ((1.0, 1.0, 1.0, 1.0), (0, 0, 1, 1), 0.5),
+        # Neighbours on opposite sides do not make a mean any surer than rows apart.
+        ((1.0, -1.0, 1.0, -1.0), (0, 0, 0, 0), 0.0),
+        # 99 of 100: such rows say nothing of the scatter of their mean, and the bound is taken.
+        ((1.0,) * 100, (0,) * 100, 0.95),
+    ],
+)
+def test_neighbours_are_alike_within_a_cycle_from_nothing_to_the_bound(
+    residuals: tuple[float, ...], cycles: tuple[int, ...], correlation: float
+) -> None:
+    off, zero = np.array(residuals), np.zeros(len(cycles), bool)
+    zero[[cycles.index(cycle) for cycle in set(cycles)]] = True
+    data = Data(np.arange(float(len(off))), np.arange(float(len(off))), np.array(cycles), zero)
+    assert _neighbours_alike(data, off) == correlation
 
 
 @pytest.mark.parametrize("name", GROWTH)
