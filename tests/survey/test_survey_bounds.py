@@ -2,9 +2,13 @@
 
 from __future__ import annotations
 
+import math
+from pathlib import Path
+
+import numpy as np
 import pytest
-from history import STATED, Truth, drawn, history
-from survey_calculations import columns_of, true_figures, with_rows
+from history import STATED, YEAR, Truth, cells, drawn, history
+from survey_calculations import SURVEY, columns_of, solved_survey, true_figures, with_rows
 
 from calcbook.chain.outcome import Solved
 from calcbook.chain.survey_outcome import SurveyOutcome
@@ -61,6 +65,80 @@ def test_the_proposal_is_the_percentile_of_the_fit(solved: Solved) -> None:
     # Standard normal quantiles at 90 % and 97.5 %: 1.281552 and 1.959964 (any table of the distribution).
     part = (results["allowance_proposed"].value - fitted) / (upper - fitted)
     assert part == pytest.approx(1.281552 / 1.959964, rel=1e-6)
+
+
+def test_the_standard_uncertainties_are_those_of_what_is_stated(solved: Solved) -> None:
+    """JCGM 100:2008, 4.3.7: a half-width a is a/sqrt(3); 20 % that hold for 90 % of the data are 20 %/1.6449."""
+    assert solved.survey is not None
+    found = {part.id: part.standard for part in solved.survey.parts}
+    expected = {"heat loss": 0.005 / math.sqrt(3.0), "factor/gnielinski-1976": 0.2 / 1.644854}
+    for symbol in ("T_hi", "T_ho", "T_ci", "T_co"):
+        expected |= {f"given/{symbol}": 0.25 / math.sqrt(3.0), f"given/{symbol}/drift": 0.1 / math.sqrt(3.0)}
+    for symbol in ("m_hot", "m_cold"):
+        expected |= {
+            f"given/{symbol}": 0.015 / math.sqrt(3.0),
+            f"given/{symbol}/drift": 0.005 / math.sqrt(3.0),
+        }
+    expected |= {"given/k_w": 0.05 / math.sqrt(3.0), "given/h_o": 0.15 / math.sqrt(3.0)}
+    assert found == pytest.approx(expected, rel=1e-6)
+    sensors = {part.id for part in solved.survey.parts if "bias of its sensor" in part.title}
+    assert sensors == {f"given/{symbol}" for symbol in ("T_hi", "T_ho", "T_ci", "T_co", "m_hot", "m_cold")}
+
+
+def test_what_cannot_be_wrong_is_no_part(tmp_path: Path) -> None:
+    survey = SURVEY.replace("tolerance: 0.5 %", "tolerance: 0 %").replace("per year: 0.1 K", "per year: 0 K")
+    outcome = solved_survey(tmp_path, cells(history(Truth(), 1)), survey).survey
+    assert outcome is not None
+    drifts = {part.id for part in outcome.parts if part.id.endswith("drift")}
+    assert drifts == {"given/m_hot/drift", "given/m_cold/drift"}
+    assert "heat loss" not in {part.id for part in outcome.parts}
+
+
+@pytest.mark.parametrize(
+    ("part", "symbol", "relative", "grows"),
+    [
+        ("given/T_hi", "T_hi", False, False),
+        ("given/T_hi/drift", "T_hi", False, True),
+        ("given/m_hot", "m_hot", True, False),
+        ("given/m_cold/drift", "m_cold", True, True),
+    ],
+)
+def test_each_part_moves_the_fit_as_rows_that_are_wrong_by_it(
+    tmp_path: Path, part: str, symbol: str, relative: bool, grows: bool
+) -> None:
+    """The rows of a straight line with a thousandth of one standard uncertainty put in, fitted anew.
+
+    A drift is nothing at the first row and whole after a year of 365.25 days.
+    """
+    survey = SURVEY.replace("kern-seaton-1959", "fouling-linear")
+    shown = history(Truth(model="linear", errors={"loss": 0.01}), 1)
+
+    def fitted(wrong: float) -> SurveyOutcome:
+        rows = cells(shown)
+        grown = shown["t"] / YEAR if grows else np.ones(len(rows))
+        figures = {name: shown[name] for name in ("T_hi", "T_ho", "T_ci", "T_co", "m_hot", "m_cold")}
+        figures[symbol] = (
+            figures[symbol] * (1.0 + wrong * grown) if relative else figures[symbol] + wrong * grown
+        )
+        for number, row in enumerate(rows):
+            one = {name: float(values[number]) for name, values in figures.items()}
+            row[1:] = (
+                *(f"{one[name]:.12f}" for name in ("T_hi", "T_ho")),
+                *(f"{one[name] * 1.8 + 32.0:.12f}" for name in ("T_ci", "T_co")),
+                f"{one['m_hot']:.12f}",
+                f"{one['m_cold'] * 3.6:.12f}",
+            )
+        outcome = solved_survey(tmp_path, rows, survey).survey
+        assert outcome is not None
+        return outcome
+
+    plain = fitted(0.0)
+    (told,) = [one for one in plain.parts if one.id == part]
+    moved = fitted(1e-3 * told.standard)
+    for name, move in told.moves:
+        change = (moved.figure(name).value - plain.figure(name).value) / 1e-3
+        # The line is straight in its rate: what is left is the curvature of the rows over the small step.
+        assert change == pytest.approx(move, rel=1e-3), name
 
 
 def test_slopes_of_the_rows_are_those_of_small_steps(solved: Solved) -> None:
