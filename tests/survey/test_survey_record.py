@@ -3,19 +3,23 @@
 from __future__ import annotations
 
 import json
+import math
 import re
 from pathlib import Path
 
+import numpy as np
 import pytest
-from history import Truth, cells, drawn, history
+from history import DAY, Truth, cells, drawn, history
 from survey_calculations import COOLER, SURVEY, solved_survey
 
+from calcbook.faults import Faults
 from calcbook.interface import read, record_text, solve, solve_file
 from calcbook.quantities import read_any
 from calcbook.record import digest_of
 from calcbook.record.results import results_data
 from calcbook.record.software import software_of
 from calcbook.survey import fitting
+from calcbook.survey.resistance import resistances
 
 TRUTH = Truth(errors=drawn(3))
 TAKING = COOLER.replace("number: T-105", "number: T-106").replace(
@@ -232,6 +236,105 @@ def test_the_other_growth_models_come_back_through_the_whole_chain(tmp_path: Pat
             # As for the asymptotic model: the wall of the fouled unit; b takes it three times over.
             rel = 0.02 if symbol == "b" else 0.006
             assert outcome.figure(f"fitted {name}").value == pytest.approx(getattr(truth, symbol), rel=rel)
+
+
+def test_a_parameter_that_the_card_takes_by_itself_is_told_and_determines_nothing(tmp_path: Path) -> None:
+    truth = Truth(model="linear", errors={"loss": 0.01})
+    solved = solved_survey(
+        tmp_path, cells(history(truth, 1)), SURVEY.replace("kern-seaton-1959", "fouling-linear")
+    )
+    assert solved.survey is not None
+    held = solved.survey.figure("fitted R_0")
+    assert held.value == 0.0
+    assert held.held == "not fitted: the value that the card takes where none is stated"
+    assert "fitted R_0" not in solved.base.results
+    assert not [item for item in solved.open_items if item.id.startswith("survey/fit")]
+
+
+@pytest.mark.parametrize(("kept", "enough"), [(8, True), (7, False)])
+def test_a_fit_wants_five_rows_beside_its_parameters_and_zeros(
+    tmp_path: Path, kept: int, enough: bool
+) -> None:
+    """A straight line and two cleanings: one rate and two zeros, so that eight rows are the fewest."""
+    truth = Truth(model="linear", errors={"loss": 0.01})
+    rows = cells(history(truth, 1, rows=401, noise=0.0))
+    chosen = [rows[place] for place in (0, 50, 100, 150, 205, 250, 300, 350)[:kept]]
+    survey = SURVEY.replace("kern-seaton-1959", "fouling-linear")
+    if enough:
+        found = solved_survey(tmp_path, chosen, survey).survey
+        assert found is not None and found.fitted == kept
+        return
+    with pytest.raises(Faults) as caught:
+        solved_survey(tmp_path, chosen, survey)
+    (fault,) = caught.value.faults
+    assert fault.code == "survey-rows-missing"
+    assert fault.message.startswith("7 of 7 rows are left") and fault.found == "lost none"
+
+
+def test_rows_without_a_zero_are_counted_where_too_few_are_left(
+    tmp_path: Path, rows: list[list[str]]
+) -> None:
+    survey = SURVEY.replace("2025-02-03 06:00", "2015-02-03").replace("2025-08-27 06:00", "2015-03-03")
+    with pytest.raises(Faults) as caught:
+        solved_survey(tmp_path, rows, survey)
+    (fault,) = caught.value.faults
+    assert "400 before the first cleaning or without rows to anchor zero on" in fault.found
+
+
+BARE = re.sub(r", tolerance: [^}]*\}", "}", COOLER).replace(
+    "situation: inside-tube, method: gnielinski-1976",
+    "coefficient: {value: 7000 W/(m^2 K), source: test}, on: inside",
+)
+
+
+def test_rows_are_anchored_and_held_against_twice_their_uncertainty(tmp_path: Path) -> None:
+    """Without tolerances a row is unsure by the deviation of rows about the fit alone: by hand from its resistances."""
+    survey = re.sub(r", drift per year: [^,]*", "", SURVEY).replace(", tolerance: 0.5 %", "")
+    shown = history(Truth(model="linear", errors={"loss": 0.01}), 1)
+    solved = solved_survey(tmp_path, cells(shown), survey.replace("kern-seaton-1959", "fouling-linear"), BARE)
+    outcome = solved.survey
+    assert outcome is not None and not outcome.parts and outcome.fitted == 400
+    given = cells(shown)
+    columns = {
+        "T_hi": [float(row[1]) + 273.15 for row in given],
+        "T_ho": [float(row[2]) + 273.15 for row in given],
+        "T_ci": [(float(row[3]) + 459.67) / 1.8 for row in given],
+        "T_co": [(float(row[4]) + 459.67) / 1.8 for row in given],
+        "m_hot": [float(row[5]) for row in given],
+        "m_cold": [float(row[6]) / 3.6 for row in given],
+    }
+    arrays = {name: np.array(figures) for name, figures in columns.items()}
+    found = resistances(solved.chain, arrays, 0.01).resistance
+    # 400 rows in 400 days: the minute of each stamp.
+    times = np.round(shown["t"] / 60.0) * 60.0
+    rate = outcome.figure("fitted r").value
+    anchored = np.zeros(400)
+    for number, start in enumerate((0.0, 205.0 * DAY)):
+        end = 205.0 * DAY if number == 0 else np.inf
+        own = (times >= start) & (times < end)
+        zero = own & (times - start <= 10.0 * DAY)
+        offset = float(np.mean(found[zero] - rate * (times[zero] - start)))
+        assert outcome.cycles[number].offset == pytest.approx(offset, rel=1e-9)
+        alike = (1.0 + outcome.correlation) / (1.0 - outcome.correlation)
+        scatter = outcome.deviation * math.sqrt(alike / np.count_nonzero(zero))
+        assert outcome.cycles[number].scatter == pytest.approx(scatter, rel=1e-12)
+        anchored[own] = found[own] - offset
+    assert outcome.negative == np.count_nonzero(anchored < 0.0) > 0
+    assert outcome.not_resolved == np.count_nonzero(anchored < 2.0 * outcome.deviation) > outcome.negative
+
+
+def test_the_plot_has_the_means_of_its_columns(tmp_path: Path, rows: list[list[str]]) -> None:
+    """72 columns of 400 days are 133 1/3 h each; the fit in the second is the mean of its curve at the rows there."""
+    outcome = solved_survey(tmp_path, rows).survey
+    assert outcome is not None and outcome.fitted == 400
+    first, second = outcome.plot[:2]
+    assert (first.begins, second.begins) == ("2025-02-03 06:00", "2025-02-08 19:20")
+    width = 400 * DAY / 72
+    times = np.round(np.linspace(0.0, 400 * DAY, 400) / 60.0) * 60.0
+    inside = times[(times >= width) & (times < 2 * width)]
+    final, tau = (outcome.figure(f"fitted {name}").value for name in ("R_inf", "tau"))
+    assert second.fitted == pytest.approx(np.mean(final * (1.0 - np.exp(-inside / tau))), rel=1e-9)
+    assert [number for number, one in enumerate(outcome.plot) if one.cleaned] == [0, int(205 * DAY / width)]
 
 
 def test_a_calculation_without_a_survey_has_none(tmp_path: Path) -> None:
