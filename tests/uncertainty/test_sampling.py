@@ -285,6 +285,62 @@ def test_where_few_samples_have_an_answer_they_are_counted_and_no_figure_is_made
     assert found.answered / found.trials == pytest.approx(0.4, abs=0.02)
 
 
+def test_a_block_without_enough_answers_takes_back_the_figures_of_those_before() -> None:
+    calls = iter(range(100))
+
+    def model(x):
+        return Sampled({"y": np.where(x["a"] < (1.0, 0.4)[next(calls)], x["a"], np.nan)})
+
+    found = propagate(model, [Drawn("a", Rectangular(0.5, 0.5))], 0.95, 1, together=1)
+    assert found.blocks == 2 and not found.is_answered and found.intervals == {}
+    # What was given up has not become steady.
+    assert found.is_capped
+
+
+def test_a_sample_has_an_answer_where_every_output_has_one() -> None:
+    """Two outputs without an answer below 0.1 and above 0.8: seven tenths of the samples are left, for both."""
+    found = propagate(
+        lambda x: Sampled(
+            {
+                "low": np.where(x["a"] < 0.1, np.nan, x["a"]),
+                "high": np.where(x["a"] > 0.8, np.nan, x["a"]),
+            },
+            {"below": x["a"] < 0.45},
+        ),
+        [Drawn("a", Rectangular(0.5, 0.5))],
+        0.95,
+        1,
+    )
+    # Three standard deviations of a share of at least 50 000 samples are 0.0067 at most.
+    assert found.answered / found.trials == pytest.approx(0.7, abs=0.0067)
+    assert found.marks["below"] / found.answered == pytest.approx(0.5, abs=0.0081)
+    for one in found.intervals.values():
+        assert 0.1 <= one.low < one.high <= 0.8
+
+
+def test_every_figure_of_every_output_is_five_times_steadier_than_the_tolerance() -> None:
+    """JCGM 101:2008, 7.9.4 and 8.2: twice the spread of mean, deviation and both ends, against a fifth of the tolerance."""
+    figures = [Drawn("a", Normal(10.0, 1.0)), Drawn("b", Normal(10.0, 1.0))]
+    found = propagate(
+        lambda x: Sampled({"still": x["a"] * 0.0 + 1.0, "y": x["a"] + np.exp(x["b"] - 10.0)}),
+        figures,
+        0.95,
+        1,
+    )
+    y = found.intervals["y"]
+    assert not found.is_capped and found.blocks > 5
+    assert y.tolerance == tolerance_of(y.standard, 1) and y.aim == y.tolerance / 5.0
+    assert max(y.spread) <= y.aim
+    before = propagate(
+        lambda x: Sampled({"still": x["a"] * 0.0 + 1.0, "y": x["a"] + np.exp(x["b"] - 10.0)}),
+        figures,
+        0.95,
+        1,
+        most_trials=found.trials - found.block_size,
+    )
+    assert before.is_capped and max(before.intervals["y"].spread) > before.intervals["y"].aim
+
+
 def test_correlated_figures_have_their_coefficient() -> None:
     figures = [Drawn(name, Normal(1.0, 0.5)) for name in "abc"]
     stated = {frozenset("ab"): 0.5, frozenset("bc"): -0.3, frozenset("ac"): 0.2}
@@ -316,4 +372,6 @@ def test_correlated_figures_keep_their_own_law(r: float) -> None:
 
 def test_matrices_that_cannot_be() -> None:
     assert is_possible(np.array([[1.0, 1.0], [1.0, 1.0]]))
+    # Three figures that are one: the eigenvalues are 3, 0 and 0, to rounding on either side of nothing.
+    assert np.linalg.eigvalsh(np.ones((3, 3))).min() < 0.0 and is_possible(np.ones((3, 3)))
     assert not is_possible(np.array([[1.0, 0.9, -0.9], [0.9, 1.0, 0.9], [-0.9, 0.9, 1.0]]))

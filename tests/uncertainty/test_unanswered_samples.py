@@ -83,6 +83,20 @@ def test_a_sample_in_which_no_area_does_counts_against_the_criterion(
     assert "of the samples have no answer and count against it" in record_text(answer)
 
 
+def test_a_limit_that_is_uncertain_itself_is_drawn_with_the_rest(tmp_path: Path) -> None:
+    """U follows from stated films and a wall: it is at least a normal limit as often as that lies below it, Phi(0.5)."""
+    whole = solved(tmp_path, 55.0).base.results["U_service"].value
+    text = FILE.format(outlet="55 degC", tolerance=", tolerance: {standard: 1 K}", correlation="")
+    spread = "tolerance: {standard: 40 W/(m^2 K)}"
+    limit = f"  U_l: {{value: {whole - 20.0!r} W/(m^2 K), is: least, source: s, {spread}}}\n"
+    text = text.replace("fluids:\n", f"{limit}fluids:\n", 1).replace("area_margin >= 0,", "U_service >= U_l,")
+    path = tmp_path / "pf-1.yaml"
+    path.write_text(text, encoding="utf-8")
+    (item,) = solve_file(path).base.criteria
+    # Tables of the normal distribution: 0.6915; three standard deviations of 50 000 samples are 0.0062.
+    assert item.reached == pytest.approx(0.6915, abs=0.0062)
+
+
 def test_a_result_that_nothing_uncertain_moves_has_no_samples(tmp_path: Path) -> None:
     """U follows from stated films and a wall, whichever temperature is drawn: its samples differ by rounding."""
     answer = solved(tmp_path, 55.0)
