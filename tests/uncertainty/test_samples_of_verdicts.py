@@ -8,11 +8,17 @@ import numpy as np
 import pytest
 
 from calcbook.chain.flips_outcome import CONTROLLING, CRITERION, LIMIT, METHOD
+from calcbook.chain.measured import Measured
 from calcbook.chain.outcome import CaseOutcome, Solved
 from calcbook.chain.samples import NO_VERDICT, Samples, evaluate_samples
-from calcbook.chain.solve import chosen, conditions_of, solve, solve_both
-from calcbook.chain.types import CONDITIONS, SERVICE, Chain
+from calcbook.chain.solve import Solution, chosen, conditions_of, solve, solve_both
+from calcbook.chain.types import CONDITIONS, SERVICE, Chain, ChainCheck
+from calcbook.faults import Place
+from calcbook.formulas import parse_expression
 from calcbook.interface import solve_file
+from calcbook.library.cards import practice_limit
+from calcbook.properties import FluidAtPressure
+from calcbook.uncertainty.samples import Phase, Statement, WallPhase, Watched
 
 CALCS = Path(__file__).resolve().parent.parent.parent / "calcs"
 # Water in tubes with cases; boiling against condensing with an accepted limit; fins in air; radiation beside wind.
@@ -82,3 +88,74 @@ def test_both_conditions_in_one_call_are_bit_for_bit_those_alone(solved: Solved)
             together = np.broadcast_to(both[condition].figure(name), 7)
             assert together.tolist() == np.broadcast_to(alone.figure(name), 7).tolist(), name
         assert (both[condition].converged == alone.converged).all()
+
+
+# --- what samples are counted by, sample by sample -------------------------------------------------------
+
+
+def solution_of(values: dict[str, list[float]], closes: list[bool], method: list[int]) -> Solution:
+    arrays = {name: np.array(figures) for name, figures in values.items()}
+    return Solution(SERVICE, arrays, {"film": np.array(method)}, np.array(closes))
+
+
+def test_a_wall_is_held_against_its_hottest_and_its_coldest_surface() -> None:
+    """Water boils at the hotter of two surfaces and freezes at the colder one, at the limit itself already; where the
+    circuit does not close there is no wall."""
+    values = {"a": [350.0, 373.0, 350.0, 380.0], "b": [350.0, 350.0, 380.0, 380.0]}
+    hot = solution_of(values, [True, True, True, False], [0] * 4)
+    boils = WallPhase("film", "boils", SERVICE, ("a", "b"), 373.0)
+    assert boils.outside(hot).tolist() == [False, True, True, False]
+    values = {"a": [280.0, 273.0, 280.0, 270.0], "b": [280.0, 280.0, 270.0, 270.0]}
+    cold = solution_of(values, [True, True, True, False], [0] * 4)
+    freezes = WallPhase("film", "freezes", SERVICE, ("a", "b"), 273.0)
+    assert freezes.outside(cold).tolist() == [False, True, True, False]
+
+
+def line_of(solved: Solved) -> FluidAtPressure:
+    """The saturation line of water, from the stream of a calculation."""
+    state = next(one for one in solved.chain.streams.values() if one.fluid.fixed is not None and one.pressure)
+    return state.fluid.state(None, None, "liquid")
+
+
+@pytest.fixture(scope="module")
+def cooler() -> Solved:
+    return solve_file(CALCS / "wc-101.yaml", for_record=False)
+
+
+def test_phases_are_held_at_the_pressure_of_each_sample(cooler: Solved) -> None:
+    """Water boils at 372.76 K and 1 bar, at 393.36 K and 2 bar (IAPWS-IF97, steam tables: 99.61 and 120.21 degC)."""
+    values = {"T": [372.6, 372.9, 393.2, 393.5], "p": [1e5, 1e5, 2e5, 2e5]}
+    solution = solution_of(values, [True] * 4, [0] * 4)
+    line = line_of(cooler)
+    below = [True, False, True, False]
+    assert Phase("T", "p", line, True).holds(solution.values).tolist() == below
+    assert Phase("T", "p", line, False).holds(solution.values).tolist() == [not one for one in below]
+    # The pressure of the stated figures would have 360 K for all of them.
+    wall = WallPhase("film", "boils", SERVICE, ("T",), 360.0, line, "p")
+    assert wall.outside(solution).tolist() == [not one for one in below]
+
+
+def test_a_limit_counts_where_its_method_is_used_and_a_figure_without_a_value_leaves_it() -> None:
+    limit = practice_limit("most", "x <= 1", "range", "", Place("trial.yaml"))
+    check = ChainCheck("film / most", "film", "card", limit, {"x": "x"})
+    solution = solution_of({"x": [0.5, 2.0, 2.0, np.nan]}, [True] * 4, [1, 1, 0, 1])
+    assert Watched(check, SERVICE, "film", 1).outside(solution).tolist() == [False, True, False, True]
+    assert Watched(check, SERVICE).outside(solution).tolist() == [False, True, True, True]
+
+
+@pytest.mark.parametrize(
+    ("operator", "holds"),
+    [
+        (">=", [False, True, True]),
+        (">", [False, False, True]),
+        ("<=", [True, True, False]),
+        ("<", [True, False, False]),
+    ],
+)
+def test_a_statement_holds_at_its_limit_as_its_sign_says(operator: str, holds: list[bool]) -> None:
+    result = Measured("U", parse_expression("y"), {"y": (SERVICE, "U")})
+    solved = {SERVICE: {"U": np.array([1.0, 2.0, 3.0]), "least": np.array([0.5, 3.5, 3.5])}}
+    assert Statement("one", result, operator, 2.0).holds(solved).tolist() == holds
+    # Against a step of its own in every sample.
+    above = [True, False, False] if ">" in operator else [False, True, True]
+    assert Statement("one", result, operator, 2.0, "least").holds(solved).tolist() == above
