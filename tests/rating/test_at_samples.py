@@ -8,10 +8,13 @@ import numpy as np
 import pytest
 from rated_units import COOLER, EVAPORATOR, HEATER, solved
 
+from calcbook.chain.rating_outcome import Throttle
 from calcbook.chain.samples import evaluate_samples
 from calcbook.faults import Faults
 from calcbook.interface import record_text, solve_file
 from calcbook.rating.at_samples import AtSamples, names_at_samples
+from calcbook.rating.saturation_way import Way, nothing_to_spare
+from calcbook.rating.turning_down import _narrowed
 
 PARTED = COOLER.replace("duty:\n", "duty:\n  parts: 4\n")
 OF_PARTS = {"area_service of parts", "area_clean of parts", "area_margin of parts"}
@@ -91,6 +94,70 @@ def test_where_the_clean_unit_does_not_carry_the_duty_there_is_no_such_state(tmp
     carries = found["area_margin_clean"].values > 0.0
     assert carries.any() and not carries.all()
     assert (np.isfinite(found["T_turned_down"].values) == carries).all()
+
+
+class Curved(Way):
+    """A way of 50 K whose clean unit has edge³ − part³ to spare; it does not close beyond one part of the way, and
+    beyond another the stream has no saturation."""
+
+    EDGES = np.array([0.43, 0.45, 0.45, 0.45, 1.2, -0.1, 0.9985])
+    CLOSES = np.array([2.0, 0.4502, 0.4, 0.4, 2.0, 2.0, 2.0])
+    ENDS = np.array([2.0, 2.0, 2.0, 0.4, 2.0, 2.0, 2.0])
+
+    def at(self, parts, samples):
+        return {"T": np.where(parts > self.ENDS[samples], np.nan, self.stated[samples] + 50.0 * parts)}
+
+    def spare(self, parts, samples):
+        return np.where(parts > self.CLOSES[samples], np.nan, self.EDGES[samples] ** 3 - parts**3)
+
+
+def test_the_way_of_every_sample_is_followed_to_where_it_ends(tmp_path: Path) -> None:
+    """Roots by hand. The second is halved towards its end, 0.02 % of the way behind the root; the third does not close
+    from 0.4 on, the fourth has no saturation there, the fifth spares something to 99.9 % of the way, the sixth nothing
+    as it stands, the last comes to nothing just before the end."""
+    stream = next(iter(solved(tmp_path, HEATER).chain.streams.values()))
+    way = Curved(None, stream, {}, np.full(7, 350.0), np.full(7, 50.0))
+    found = way.found()
+    expected = [0.43, 0.45, np.nan, np.nan, np.nan, np.nan, 0.9985]
+    # A saturation temperature is known to 1e-9 K, of 50 K.
+    assert found.places == pytest.approx(expected, abs=2e-11, nan_ok=True)
+    steam, chiller = Throttle("hot", "pressure", False), Throttle("cold", "saturation temperature", False)
+    carried = "the clean unit carries the duty"
+    assert found.reason(2, steam) == f"{carried} down to a pressure at which its circuit does not close"
+    assert found.reason(2, chiller).startswith(f"{carried} up to a saturation temperature at which")
+    assert found.reason(3, steam) == f"{carried} down to a pressure beyond which the stream has no saturation"
+    assert found.reason(4, steam) == f"{carried} with 0.100 % of the temperature difference still"
+    assert found.reason(5, steam) == "the clean unit does not carry the duty: it is 0.100 % short"
+
+
+def test_a_clean_unit_without_an_answer_is_not_said_to_lack_area() -> None:
+    words = nothing_to_spare(float("nan"), "the stated pressure")
+    assert words == "the circuit of the clean unit does not close at the duty and the stated pressure"
+    assert nothing_to_spare(0.01, "the stated pressure") == ""
+
+
+@pytest.mark.parametrize(
+    ("spare", "places"),
+    [
+        ((np.nan, -0.2, -0.1, 0.1, 0.3), (2, 3)),
+        # Twice through nothing: the flow nearest to the stated one is taken, and the first beyond it.
+        ((-0.1, 0.1, np.nan, -0.05, 0.2, 0.3), (3, 4)),
+        # Nothing below: the end of what has no answer, and not one between those that spare something.
+        ((np.nan, np.nan, 0.1, np.nan, 0.2), (1, 2)),
+    ],
+)
+def test_a_flow_is_narrowed_between_lacking_and_sparing(
+    spare: tuple[float, ...], places: tuple[int, int]
+) -> None:
+    assert _narrowed(np.array(spare)) == places
+
+
+def test_only_what_is_asked_is_found_at_samples(tmp_path: Path) -> None:
+    answer = solved(tmp_path, HEATER)
+    inputs = dict(answer.chain.case_inputs(""))
+    inputs["given/p_st"] = np.array([2.6e5, 2.7e5])
+    found = evaluate_samples(answer.chain, inputs, later=AtSamples(answer, {"T_turned_down"})).results
+    assert set(found) & CONTROL == {"T_turned_down"}
 
 
 @pytest.mark.parametrize(

@@ -72,6 +72,26 @@ def test_the_range_of_a_wall_holds_on_day_one_too(tmp_path: Path) -> None:
     assert {name.partition(" / ")[0] for name in left(day, "clean")} == {"tube wall"}
 
 
+def test_a_flow_that_is_turned_down_out_of_the_range_of_its_method_is_told(tmp_path: Path) -> None:
+    """By hand: Re = 4·m/(N·pi·d_i·mu), the viscosity by iapws at the mean of the ends. Gnielinski's begins at 2300."""
+    text = COOLER.replace("duty:\n", "duty:\n  throttled: hot\n").replace("value: 62,", "value: 400,")
+    text = text.replace("L:      {value: 4.88 m", "L: {value: 16 m").replace(
+        "situation: inside-tube,", "situation: inside-tube, method: gnielinski-1976,"
+    )
+    day = day_of(tmp_path, text)
+    assert day.turned_down is not None
+    reynolds = []
+    for state in (day.clean, day.turned_down):
+        hot = state.sides["hot"]
+        viscosity = IAPWS97(T=(78.0 + 273.15 + hot.outlet) / 2.0, P=0.4).mu
+        reynolds.append(4.0 * hot.mass_flow / (400.0 * math.pi * 0.01575 * viscosity))
+    assert reynolds[0] > 2300.0 > reynolds[1]
+    name = "tube-side film / gnielinski-1976 / turbulent"
+    assert left(day, "turned down")[name].state == "outside"
+    assert left(day, "turned down")[name].value == pytest.approx(reynolds[1], rel=1e-3)
+    assert name not in left(day, "clean")
+
+
 def test_the_passes_of_the_geometry_are_not_told_again(tmp_path: Path) -> None:
     """They are a caution of the calculation, and the clean unit has the same ones."""
     text = COOLER.replace("parallel: N}", "tubes: N, passes: {value: 2, source: s}}")
