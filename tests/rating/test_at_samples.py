@@ -85,6 +85,27 @@ def test_a_sample_does_not_depend_on_its_neighbours(tmp_path: Path) -> None:
     assert values[0]["pressure_turned_down"] == answer.base.results["pressure_turned_down"].value
 
 
+def test_samples_beyond_the_critical_point_leave_the_others_what_they_are(tmp_path: Path) -> None:
+    """Propane is raised no further than 369.9 K; the way to steam of 2.6 bar leads beyond, that to 0.8 bar does not."""
+    text = (
+        EVAPORATOR.replace("duty:\n", "duty:\n  throttled: cold\n")
+        .replace("n-pentane", "propane")
+        .replace("value: 3 bara", "value: 20 bara")
+        .replace("1500 kW", "600 kW")
+    )
+    answer = solved(tmp_path, text)
+    later = AtSamples(answer, CONTROL)
+    pressures = [2.6e5, 0.8e5, 2.0e5, 0.7e5]
+
+    def found(of: list[float]) -> np.ndarray:
+        inputs = {**answer.chain.case_inputs(""), "given/p_st": np.array(of)}
+        return evaluate_samples(answer.chain, inputs, later=later).results["T_turned_down"].values
+
+    alone = np.concatenate([found([pressure]) for pressure in pressures])
+    assert np.isnan(alone).tolist() == [True, False, True, False]
+    assert np.array_equal(found(pressures), alone, equal_nan=True)
+
+
 def test_where_the_clean_unit_does_not_carry_the_duty_there_is_no_such_state(tmp_path: Path) -> None:
     """The clean area needed at a pressure is more than the installed one exactly where the state is missing."""
     answer = solved(tmp_path, HEATER)
