@@ -12,6 +12,7 @@ from survey_calculations import SURVEY, columns_of, solved_survey, true_figures,
 
 from calcbook.chain.outcome import Solved
 from calcbook.chain.survey_outcome import SurveyOutcome
+from calcbook.survey.bounds import parts_of
 from calcbook.survey.resistance import resistances, slopes
 
 SEEDS = 100
@@ -83,6 +84,17 @@ def test_the_standard_uncertainties_are_those_of_what_is_stated(solved: Solved) 
     assert found == pytest.approx(expected, rel=1e-6)
     sensors = {part.id for part in solved.survey.parts if "bias of its sensor" in part.title}
     assert sensors == {f"given/{symbol}" for symbol in ("T_hi", "T_ho", "T_ci", "T_co", "m_hot", "m_cold")}
+
+
+def test_a_method_is_wrong_in_every_row_by_its_standard_uncertainty(solved: Solved) -> None:
+    chain, survey = solved.chain, solved.chain.calculation.survey
+    assert survey is not None
+    columns = columns_of(history(Truth(), 3, rows=40, noise=0.0))
+    found = slopes(chain, columns, 0.01)
+    parts, without = parts_of(chain, survey, found, columns, np.zeros(40))
+    (part,) = [part for part in parts if part.id == "factor/gnielinski-1976"]
+    assert part.errors == pytest.approx(found[part.id] * 0.2 / 1.644854, rel=1e-6)
+    assert without == []
 
 
 def test_what_cannot_be_wrong_is_no_part(tmp_path: Path) -> None:

@@ -161,6 +161,13 @@ def test_rows_that_do_not_bend_leave_the_final_resistance_open() -> None:
     assert not found.determined or bool(np.any(unsure > 0.5 * np.abs(found.parameters)))
 
 
+def test_rows_at_one_time_do_not_tell_two_parameters_apart() -> None:
+    """Every R_inf has a tau that meets the one resistance at 60 days: the slopes in both are parallel."""
+    times = np.array([0.0] * 5 + [60 * DAY] * 7)
+    data = Data(times, 1e-4 * (times > 0.0) + 1e-7 * (-1.0) ** np.arange(12), np.zeros(12, int), times == 0.0)
+    assert not fit(model_of("kern-seaton-1959"), data).determined
+
+
 def test_a_parameter_that_only_shifts_the_zero_is_not_fitted(tmp_path: Path) -> None:
     text = (Path(__file__).parents[2] / "calcbook/library/methods/fouling-linear.yaml").read_text(
         encoding="utf-8"

@@ -323,6 +323,26 @@ def test_rows_are_anchored_and_held_against_twice_their_uncertainty(tmp_path: Pa
     assert outcome.not_resolved == np.count_nonzero(anchored < 2.0 * outcome.deviation) > outcome.negative
 
 
+def test_the_rows_beyond_a_limit_of_the_resistance_are_counted(tmp_path: Path) -> None:
+    """Without noise the balance closes; 6 % more hot flow in one row opens it by about 2·0.06/2.06 = 5.8 %: beyond the
+    caution of 5 %, within the range of 10 %."""
+    rows = cells(history(Truth(errors={"loss": 0.01}), 1, noise=0.0))
+    rows[100][5] = f"{1.06 * float(rows[100][5]):.3f}"
+    solved = solved_survey(tmp_path, rows)
+    checks = {
+        check.id.rpartition(" / ")[2]: check for check in solved.base.checks if "plant-data" in check.id
+    }
+    found = {name: (check.state, check.value) for name, check in checks.items()}
+    assert found == {
+        "heat flow": ("within", 0.0),
+        "mean temperature difference": ("within", 0.0),
+        "heat balance": ("within", 0.0),
+        "good heat balance": ("outside", 1 / 400),
+        "correction factor": ("within", 0.0),
+    }
+    assert checks["good heat balance"].figure == "1 of 400 rows outside"
+
+
 def test_the_plot_has_the_means_of_its_columns(tmp_path: Path, rows: list[list[str]]) -> None:
     """72 columns of 400 days are 133 1/3 h each; the fit in the second is the mean of its curve at the rows there."""
     outcome = solved_survey(tmp_path, rows).survey

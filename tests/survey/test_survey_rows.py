@@ -14,7 +14,7 @@ from calcbook.chain.outcome import Solved
 from calcbook.chain.survey_outcome import SurveyOutcome
 from calcbook.faults import Faults
 from calcbook.interface import read, record_text
-from calcbook.survey.rows import read_moments, read_numbers, read_rows
+from calcbook.survey.rows import moment_text, read_moments, read_numbers, read_rows
 from calcbook.survey.rules import Ends, sift
 
 TRUTH = Truth(errors=drawn(7))
@@ -61,6 +61,8 @@ def test_every_spoiled_row_is_rejected_by_its_rule(outcome_of: Outcomes, whole: 
     assert found["sensor range / T_ci"] == 1
     assert found["sensor range / m_cold"] == 1
     assert found["heat balance closure"] == 2
+    # A stamp that is written twice is no step back.
+    assert outcome.out_of_order == 0
     # The two jumps of 6 K and the rows after them; the last jump is one of load, as the inlet wanders.
     assert found["steady state"] >= 4
     assert adds_up(outcome)
@@ -141,6 +143,18 @@ def test_a_figure_at_the_limit_of_a_rule_is_kept(outcome_of: Outcomes, whole: li
     found = {rule.id: (rule.count, rule.first) for rule in outcome_of(rows, survey).rules}
     assert found["sensor range / m_hot"] == (2, "row 103")
     assert found["flow ratio / m_hot"] == (4, "row 101")
+
+
+@pytest.mark.parametrize("part", [1.2, 0.8])
+def test_a_heat_balance_may_be_open_on_neither_side(
+    outcome_of: Outcomes, whole: list[list[str]], part: float
+) -> None:
+    """A fifth more or less of the hot flow is about 2·0.2/2.2 = 18 % more heat or 22 % less than the cold one takes."""
+    rows = [list(row) for row in whole]
+    rows[100][5] = f"{part * float(rows[100][5]):.3f}"
+    outcome = outcome_of(rows, SURVEY)
+    (rule,) = [rule for rule in outcome.rules if rule.id == "heat balance closure"]
+    assert (rule.count, rule.first, rule.limit) == (1, "row 101", "at most 8 % either way")
 
 
 @pytest.mark.parametrize(("missing", "is_gap"), [(4, False), (5, True)])
@@ -300,7 +314,14 @@ def test_a_time_in_hours_gives_what_dates_give(outcome_of: Outcomes, whole: list
     assert [one.value for one in by_hour.figures] == pytest.approx(
         [one.value for one in by_date.figures], rel=1e-9
     )
-    assert by_hour.first == "0 h"
+    assert (by_hour.first, by_hour.last) == ("0 h", f"{411 * 24} h")
+
+
+def test_a_moment_has_its_time_of_day_unless_it_is_midnight(solved: Solved) -> None:
+    survey = solved.chain.calculation.survey
+    assert survey is not None
+    told = [moment_text(seconds, survey) for seconds in (0.0, 1800.0, 86400.0, 90000.0)]
+    assert told == ["1970-01-01", "1970-01-01 00:30", "1970-01-02", "1970-01-02 01:00"]
 
 
 def test_units_of_a_column_change_its_text_and_nothing_else(
@@ -332,6 +353,8 @@ def test_units_of_a_column_change_its_text_and_nothing_else(
         ("1_0", None),
         ("12,5", None),
         ("nan", None),
+        # Beyond what a number of the machine holds.
+        ("1e999", None),
     ],
 )
 def test_a_cell_is_a_plain_number_or_nothing(cell: str, figure: float | None) -> None:
@@ -349,6 +372,11 @@ def test_a_cell_is_a_plain_number_or_nothing(cell: str, figure: float | None) ->
         ("1970-01-01T00:00Z", None),
         ("1970-01-01 00:00+01:00", None),
         ("1970-02-30", None),
+        # Plants have logged in the years from 1900 to 2199; 25 567 days lie between 1900 and 1970, 84 006 to 2200.
+        ("1899-12-31 23:59", None),
+        ("1900-01-01", -25567 * 86400.0),
+        ("2199-12-31", 84005 * 86400.0),
+        ("2200-01-01", None),
         ("01/02/1970", None),
     ],
 )
