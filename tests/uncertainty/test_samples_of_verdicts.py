@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -18,7 +19,15 @@ from calcbook.formulas import parse_expression
 from calcbook.interface import solve_file
 from calcbook.library.cards import practice_limit
 from calcbook.properties import FluidAtPressure
-from calcbook.uncertainty.samples import Phase, Statement, WallPhase, Watched
+from calcbook.uncertainty.samples import (
+    OUTSIDE_ANY,
+    ChainModel,
+    Phase,
+    Statement,
+    WallPhase,
+    Watched,
+    watched,
+)
 
 CALCS = Path(__file__).resolve().parent.parent.parent / "calcs"
 # Water in tubes with cases; boiling against condensing with an accepted limit; fins in air; radiation beside wind.
@@ -159,3 +168,45 @@ def test_a_statement_holds_at_its_limit_as_its_sign_says(operator: str, holds: l
     # Against a step of its own in every sample.
     above = [True, False, False] if ">" in operator else [False, True, True]
     assert Statement("one", result, operator, 2.0, "least").holds(solved).tolist() == above
+
+
+def test_samples_beyond_a_stop_have_no_answer_and_beyond_a_range_are_counted() -> None:
+    """One sample holds both limits of x, one leaves its range, one its stop as well; another leaves the range of z."""
+
+    def limited(name: str, that: str, level: str, symbol: str) -> Watched:
+        limit = practice_limit(name, that, level, "", Place("trial.yaml"))
+        return Watched(ChainCheck(f"film / {name}", "film", "card", limit, {symbol: symbol}), SERVICE)
+
+    model = ChainModel.__new__(ChainModel)
+    model.limits = (
+        limited("range", "x <= 1", "range", "x"),
+        limited("stop", "x <= 3", "stop", "x"),
+        # The same limit of another method of that film: they are one row.
+        limited("range", "z <= 1", "range", "z"),
+        limited("other", "z <= 0", "range", "z"),
+    )
+    model.results = (Measured("y", parse_expression("y"), {"y": (SERVICE, "y")}),)
+    model.statements = ()
+    values = {"x": [0.5, 2.0, 4.0, 0.5], "z": [-1.0, -1.0, -1.0, 2.0], "y": [1.0, 2.0, 3.0, 4.0]}
+    found = model._sampled({SERVICE: solution_of(values, [True] * 4, [0] * 4)}, {}, np.ones(4, dtype=bool), 4)
+    assert np.array_equal(found.outputs["y"], [1.0, 2.0, np.nan, 4.0], equal_nan=True)
+    marks = {name: mark.tolist() for name, mark in found.marks.items()}
+    assert marks == {
+        "service: film / range": [False, True, True, True],
+        "service: film / stop": [False, False, True, False],
+        "service: film / other": [False, False, False, True],
+        OUTSIDE_ANY: [False, True, True, True],
+    }
+
+
+def test_stops_and_ranges_are_watched_and_cautions_are_not(cooler: Solved) -> None:
+    known = next(iter(cooler.chain.inputs))
+    checks = tuple(
+        ChainCheck(
+            level, "duty", "card", practice_limit(level, "x > 0", level, "", Place("t.yaml")), {"x": known}
+        )
+        for level in ("stop", "range", "caution")
+    )
+    chain = replace(cooler.chain, checks=checks)
+    found = {one.id for one in watched(chain, SERVICE)}
+    assert {"stop", "range", "caution"} & found == {"stop", "range"}
