@@ -17,6 +17,11 @@ from calcbook.rating.saturation_way import Way, nothing_to_spare
 from calcbook.rating.turning_down import _narrowed
 
 PARTED = COOLER.replace("duty:\n", "duty:\n  parts: 4\n")
+SPECIFIED = (
+    HEATER.replace("resistance: R_f, on: inside", "on: inside")
+    .replace("  R_f:  {value: 0.00018 m^2 K/W, is: allowance,       source: sheet}\n", "")
+    .replace("report:", "fouling specified as: {cleanliness: 85 %, split: {deposit: 100 %}}\nreport:")
+)
 OF_PARTS = {"area_service of parts", "area_clean of parts", "area_margin of parts"}
 CONTROL = {"pressure_turned_down", "T_turned_down"}
 
@@ -188,6 +193,8 @@ def test_only_what_is_asked_is_found_at_samples(tmp_path: Path) -> None:
         (PARTED, OF_PARTS),
         (COOLER, set()),
         (EVAPORATOR.replace("\n  heat flow: Q_ev", ""), set()),
+        # What the fouling is was found for a case, and other samples have another.
+        (SPECIFIED, set()),
     ],
 )
 def test_what_can_be_found_at_samples(tmp_path: Path, text: str, names: set[str]) -> None:
