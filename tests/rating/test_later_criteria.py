@@ -51,10 +51,30 @@ def test_criteria_stand_in_the_order_of_the_file(tmp_path: Path, days: float) ->
     assert found[0].margin == pytest.approx(86400.0, rel=1e-3)
     text = record_text(result)
     assert f"criterion 3 is not met in case base: {criteria[2]}." in text
-    assert "What is found once from the solved calculation is not searched" in text
-    # The distance to flip and the samples keep to the criteria that they can ask.
+    assert "is not searched" not in text
+    # The one given is the time since the last cleaning, which moves nothing that is found over time.
     assert result.flips is not None
     assert {flip.id for flip in result.flips.of_kind("criterion")} <= {"criterion 2"}
+    length = "length: {value: 4.88 m, source: s}"
+    given = "givens:\n  L: {value: 4.88 m, is: tube length, source: s}\n"
+    text = (COOLER + TABLE + stated(*criteria)).replace(length, "length: L").replace("givens:\n", given)
+    flips = solved(tmp_path, text).flips
+    assert flips is not None
+    by_length = [flip for flip in flips.of_kind("criterion") if flip.input.symbol == "L"]
+    becomes = {flip.id: flip.becomes for flip in by_length}
+    assert (becomes["criterion 1"], becomes["criterion 3"]) == ("not met", "met")
+
+
+def test_a_criterion_that_asks_for_an_early_loss_is_said_not_to_be_searched(
+    tmp_path: Path, days: float
+) -> None:
+    """Where the cleaned unit does not carry the duty, neither an early nor a late loss is met."""
+    criterion = f"{LOST} <= {days + 1:.3f} days"
+    result = solved(tmp_path, COOLER + TABLE + stated(criterion))
+    assert result.flips is not None and result.flips.left_out == (criterion,)
+    assert f"What is found once from the solved calculation is not searched: {criterion}." in record_text(
+        result
+    )
 
 
 def test_an_interval_is_judged(tmp_path: Path) -> None:

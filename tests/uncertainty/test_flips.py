@@ -22,6 +22,7 @@ from calcbook.faults import Collector, Place
 from calcbook.interface import solve_file
 from calcbook.library import vocabulary
 from calcbook.quantities import read_any
+from calcbook.rating.growth import over_time
 from calcbook.rating.rate import rated
 from calcbook.uncertainty import flips
 from calcbook.uncertainty.flips import distances_to_flip
@@ -694,7 +695,10 @@ def rated_alone(chain: Chain, flip: Flip, printed: float) -> CaseOutcome:
     built = build(probe, chain.library, collector)
     solved = analysis.analyse(built, collector) if built is not None else None
     assert solved is not None, list(collector)
-    return analysis.judged_later(rated(solved), collector).base
+    solved = rated(solved)
+    # A calculation without a table over time has nothing in service to be followed.
+    solved = over_time(solved) if solved.chain.in_service else solved
+    return analysis.judged_later(solved, collector).base
 
 
 def is_later(chain: Chain, flip: Flip) -> bool:
