@@ -93,7 +93,8 @@ class Links:
             altered = check_seal(folder)
             stated = json.loads((folder / RESULTS).read_text(encoding="utf-8"))
             results = stated["results"]
-            surfaces = {row["name"]: row["surface"] for row in stated["conditions"]["clean"]}
+            rows = stated.get("conditions", {}).get("clean", [])
+            surfaces = {row["name"]: row["surface"] for row in rows}
         except (Faults, OSError, ValueError, KeyError, TypeError):
             raise _fault(
                 "link-revision-unknown",

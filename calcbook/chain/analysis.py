@@ -76,6 +76,8 @@ from calcbook.quantities import Quantity, QuantityFault, QuantityKind, as_kind, 
 
 Array = np.ndarray
 DUTY_LOST = "time_until_duty_lost"
+# The kind and the title of that result.
+OF_DUTY_LOST = ("service time", "time in service until the duty is lost")
 MEAN_OF_PLACES = " mean of places"
 # Results that are made of the solved base case, by how they start, with the key that asks for them.
 LATER = {

@@ -11,7 +11,7 @@ from collections.abc import Iterable, Mapping
 import numpy as np
 
 from calcbook.chain.along import OF_PARTS
-from calcbook.chain.analysis import DUTY_LOST, keeps_what_is_found_later, limit_at
+from calcbook.chain.analysis import DUTY_LOST, OF_DUTY_LOST, keeps_what_is_found_later, limit_at
 from calcbook.chain.figures import ResultFigures
 from calcbook.chain.outcome import CaseOutcome, Solved
 from calcbook.chain.rating_outcome import FLOW, OF_DAY_ONE, PRESSURE, PRESSURE_RESULT, TEMPERATURE_RESULT
@@ -85,16 +85,14 @@ class AtSamples:
         if DUTY_LOST in self.names:
             times = self._until_lost(inputs, service)
             judged = np.isin(case_of, self.with_times)
-            title = "time in service until the duty is lost"
-            found[DUTY_LOST] = ResultFigures(
-                np.where(judged, times, np.nan), vocabulary()["service time"], title
-            )
+            quantity, title = OF_DUTY_LOST
+            found[DUTY_LOST] = ResultFigures(np.where(judged, times, np.nan), vocabulary()[quantity], title)
         return {name: figures for name, figures in found.items() if name in self.names}
 
     def _until_lost(self, inputs: Mapping[str, Array], service: Solution) -> Array:
         """Looked for beyond what any criterion asks for, and to the end of the table at least."""
         given = {name: value for name, value in inputs.items() if name in self.chain.inputs}
-        kind = vocabulary()["service time"]
+        kind = vocabulary()[OF_DUTY_LOST[0]]
         limits = (
             limit_at(self.chain, item, kind, service)
             for item in self.chain.calculation.acceptance

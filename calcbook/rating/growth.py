@@ -13,6 +13,7 @@ from dataclasses import replace
 import numpy as np
 
 from calcbook.calcfile.in_service import CLEANED_UNIT, DUTY
+from calcbook.chain.analysis import DUTY_LOST, OF_DUTY_LOST
 from calcbook.chain.growth_outcome import CARRIED, ClosedForm, Interval, OverTime, TimeRow
 from calcbook.chain.in_service import loss_against
 from calcbook.chain.outcome import Result, Solved
@@ -65,7 +66,7 @@ def _results(table: OverTime) -> dict[str, Result]:
     """The named results that other calculations may take: times that are there."""
     kinds = vocabulary()
     found = {
-        "time_until_duty_lost": (table.duty_lost, "service time", "time in service until the duty is lost"),
+        DUTY_LOST: (table.duty_lost, *OF_DUTY_LOST),
         "cleaning_interval": (
             table.interval.interval if table.interval is not None else NAN,
             "cleaning interval",

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from calcbook.calcfile.calculation import Swept
-from calcbook.chain.analysis import is_found_later
+from calcbook.chain.analysis import OF_DUTY_LOST, is_found_later
 from calcbook.chain.figures import ResultFigures
 from calcbook.chain.flips_outcome import LIMIT
 from calcbook.chain.outcome import Result, Solved
@@ -103,7 +103,7 @@ def _named(solved: Solved, name: str) -> Result:
     known = solved.base.results.get(name)
     if known is not None:
         return known
-    kind, title = OF_DAY_ONE.get(name, ("service time", "time in service until the duty is lost"))
+    kind, title = OF_DAY_ONE.get(name, OF_DUTY_LOST)
     return Result(name, np.nan, vocabulary()[kind], title)
 
 
