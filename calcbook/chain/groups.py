@@ -263,6 +263,7 @@ class Groups:
         else:
             self._say_kept(term)
         if stated_on != surface:
+            self._say_referred(term, stated_on)
             coefficient = scope.relation_step(
                 f"{term.name}/referred/h",
                 "h",
@@ -287,6 +288,18 @@ class Groups:
         candidate = Candidate(STATED, steps, coefficient, checks, "stated in the calculation file", False, ())
         return Branch(
             term.name, "stated", bulk, (candidate,), is_forced=True, stream=stream.name if stream else ""
+        )
+
+    def _say_referred(self, term: Term, stated_on: int) -> None:
+        """Say of a finned film stated on another surface that the efficiency of its fins still acts."""
+        if term.fins is None:
+            return
+        self.scope.assume(
+            f"{term.name}/referred",
+            f"The coefficient of {term.name} is stated on the surface {self.shape.surfaces[stated_on].name} and referred"
+            " by the areas; the efficiency of the fins acts on top of it.",
+            "a stated coefficient is taken as that of the fluid: one that holds the fins already needs no fins here",
+            term.name,
         )
 
     def _say_kept(self, term: Term) -> None:

@@ -236,6 +236,21 @@ def test_an_allowance_on_the_bare_surface_is_referred(tmp_path):
     )
 
 
+def test_a_coefficient_stated_on_the_bare_surface_says_that_the_fins_still_act(tmp_path):
+    """By the areas alone: h on the total surface is h·A_bare/A_total, and the fins have their resistance besides."""
+    on_total = finned_tube()
+    assert on_total.count("coefficient: h_a, ") == 1
+    whole, total = solved(tmp_path, on_total)
+    assert not [item for item in whole.assumptions if item.id == "air film/referred"]
+    chain, bare = solved(tmp_path, on_total.replace("coefficient: h_a, ", "coefficient: h_a, on: bare, "))
+    said = [item.text for item in chain.assumptions if item.id == "air film/referred"]
+    assert said and "the efficiency of the fins acts on top of it" in said[0]
+    ratio = bare.number("circuit/A_o") / bare.number("geometry/A_tf")
+    stated = total.number(whole.results["h air film"])
+    assert bare.number("air film/referred/h") == pytest.approx(stated * ratio, rel=1e-12)
+    assert bare.number(chain.results["R fins of air film"]) > 0.0
+
+
 def test_fins_without_height_are_no_fins(tmp_path):
     """As the height goes to nothing U goes to that of the bare tube: the rest is the free tip of each fin."""
     _, finned = solved(tmp_path, finned_tube(H="0.001 mm", t="0.0001 mm", more=", tip: adiabatic"))
