@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -99,8 +99,42 @@ def stream_findings(
         phase = state.phase or fluid.phase_at(temperature)
         for place, bound in ends_of(chain, state.name):
             items += _state_items(state, fluid, float(values[bound]), phase, place, case, collector)
+        items += _measured_items(chain, state, phase, values, case, collector)
     _check_gaps(chain, values, collector, case)
     return tuple(items)
+
+
+def _measured_items(
+    chain: Chain,
+    state: StreamState,
+    phase: str,
+    values: Mapping[str, Any],
+    case: str,
+    collector: Collector,
+) -> list[OpenItem]:
+    """What the fluid says of the state at which a volume flow is measured: it must be of the phase of the stream.
+
+    Normal cubic metres of moist air are those of a gas of its composition, though water would condense: an open item.
+    """
+    name = f"stream {state.name}/density of flow"
+    step = next((step for step in chain.steps if step.id == name), None)
+    if step is None or step.inputs["T"] == state.temperature:
+        return []
+    place = " where its flow is measured"
+    measured = replace(state, temperature=step.inputs["T"], pressure=step.inputs["p"], phase=phase)
+    fluid = _fluid_at(measured, values, collector, f"stream {state.name}{place}", case)
+    if fluid is None:
+        return []
+    own = Collector()
+    items = _state_items(measured, fluid, float(values[measured.temperature]), phase, place, case, own)
+    for fault in own:
+        if fault.code != "above-saturation":
+            collector.take([fault])
+            continue
+        name = f"stream {state.name}{place}/{fault.code}" + (f"/{case}" if case else "")
+        words = "the density there is that of a gas of this composition"
+        items.append(OpenItem(name, "state", f"{fault.message[0].upper()}{fault.message[1:]}: {words}."))
+    return items
 
 
 def _check_flows(chain: Chain, values: Mapping[str, Any], collector: Collector, case: str) -> None:
