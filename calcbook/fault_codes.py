@@ -140,6 +140,7 @@ CODES: dict[str, str] = {
     "sweep-steps": "a sweep that has too few or too many figures, or no whole number of them",
     "sweep-still": "a sweep that ends where it begins",
     "result-unknown": "a result that the calculation does not have",
+    "card-twice": "a card of the book with the name of one of the library",
     "card-id-differs": "the id of a card differs from its file name",
     "currency-unreadable": "a word for money that is no single word, or that is a unit",
     "method-not-growth": "a card that gives no fouling resistance after a time in service",

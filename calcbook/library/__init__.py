@@ -111,12 +111,14 @@ class Library:
 
     def _path(self, kind: str, name: str) -> tuple[Path, bool]:
         path = ROOT / kind / f"{name}.yaml"
-        if _is_plain(name) and path.is_file():
-            return path, False
         house = self._house_cards(kind).get(name)
+        singular = kind.removesuffix("s")
+        if _is_plain(name) and path.is_file():
+            if house is not None:
+                raise Faults([_card_twice(singular, name, house)])
+            return path, False
         if house is not None:
             return house, True
-        singular = kind.removesuffix("s")
         raise Faults(
             [
                 Fault(
@@ -129,6 +131,16 @@ class Library:
                 )
             ]
         )
+
+
+def _card_twice(singular: str, name: str, house: Path) -> Fault:
+    return Fault(
+        "card-twice",
+        Place(f"{house.parent.name}/{house.name}"),
+        f"the book and the library have a {singular} of one name",
+        name,
+        "a name of its own for the card of the book",
+    )
 
 
 # The first key of a card, which says what it is.

@@ -315,6 +315,8 @@ def _differences(change: Change) -> tuple[str, str]:
     was, now = change.quantity_was, change.quantity_now
     if was is None or now is None:
         return "", ""
+    if not was.on_base_of(now):
+        return "none: one is a gauge pressure", "none"
     is_point = was.reading == "point" or now.reading == "point"
     if is_point:
         return f"{_signed(now.value - was.value)} K", "none: a temperature"

@@ -414,7 +414,7 @@ def _with_card(side: Side, card: str, replacement: tuple[str, str]) -> Effect | 
                 ),
                 encoding="utf-8",
             )
-            corrected = read_method(copy)
+            corrected = read_method(copy, library.method(card).house)
         elif f"material {card}" in side.solved.cards:
             copy.write_text(
                 _corrected(
@@ -422,7 +422,7 @@ def _with_card(side: Side, card: str, replacement: tuple[str, str]) -> Effect | 
                 ),
                 encoding="utf-8",
             )
-            corrected = read_material(copy)
+            corrected = read_material(copy, library.material(card).house)
         else:
             return None
     return _effect(side, side.tree, CorrectedLibrary(library, corrected), [f"{card}, {replacement[0]}"])
@@ -539,6 +539,11 @@ def _effects(found: Recall) -> list[Block]:
     blocks: list[Block] = [Heading(2, f"With {found.wanted.value}"), Table(columns, tuple(rows))]
     if any(item.effect is not None and _leaves_out(item.effect.was) for item in found.found):
         blocks.append(Paragraph(NOT_HERE))
+    if not any(item.effect is not None for item in found.found):
+        return [
+            *blocks,
+            Paragraph("No calculation was solved with it: whether a verdict changes is not known."),
+        ]
     if not flips:
         return [*blocks, Paragraph("No verdict and no check changes its state.")]
     return [

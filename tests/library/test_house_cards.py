@@ -10,6 +10,7 @@ from click.testing import CliRunner
 
 from calcbook.chain.outcome import Solved
 from calcbook.commands.library import command as library_command
+from calcbook.commands.recall import command as recall_command
 from calcbook.faults import Faults
 from calcbook.interface import library_of, record_text, solve_file
 from calcbook.library import Library
@@ -229,3 +230,34 @@ def test_a_built_in_card_is_read_once_whatever_the_book_and_a_house_card_by_its_
     assert one.method(CARD) is not other.method(CARD)
     assert one.names("methods") == other.names("methods")
     assert CARD in one.names("methods") and CARD not in Library().names("methods")
+
+
+def test_a_card_with_the_name_of_one_of_the_library_is_a_fault(book: Path) -> None:
+    """Neither is silently taken for the other: the record would not say which."""
+    name = "stainless-316-kaschnitz-2017"
+    text = (book / "he-951.yaml").read_text(encoding="utf-8")
+    wall = next(line for line in text.splitlines() if "kind: wall" in line)
+    material = wall.split("material: ")[1].split("}")[0].split(",")[0]
+    (book / "he-951.yaml").write_text(
+        text.replace(f"material: {material}", f"material: {name}"), encoding="utf-8"
+    )
+    assert solve_file(book / "he-951.yaml", for_record=False).base.results
+    library_of.cache_clear()
+    shutil.copy(Path(read_method.__code__.co_filename).parent / "materials" / f"{name}.yaml", book / "cards")
+    (fault,) = [item for item in faults(book).faults if item.code == "card-twice"]
+    assert (fault.place.file, fault.found) == (f"cards/{name}.yaml", name)
+
+
+def test_a_corrected_card_of_the_book_is_recalled_as_a_run_with_it(book: Path) -> None:
+    (book / "book.yaml").write_text("book: A test book\n", encoding="utf-8")
+    was = solve_file(book / "he-951.yaml", for_record=False).base.results["U_service"].value
+    page = CliRunner().invoke(
+        recall_command, [str(book), "--card", CARD, "--value", "0.222=0.226"], catch_exceptions=False
+    )
+    assert page.exit_code == 0 and "key-unknown" not in page.output, page.output
+    library_of.cache_clear()
+    text = (book / "cards" / f"{CARD}.yaml").read_text(encoding="utf-8")
+    (book / "cards" / f"{CARD}.yaml").write_text(text.replace("0.222*", "0.226*"), encoding="utf-8")
+    now = solve_file(book / "he-951.yaml", for_record=False).base.results["U_service"].value
+    assert now != was
+    assert f"{now:.4g}"[:4] in page.output and f"{(now - was) / was:+.2%}".replace("%", " %") in page.output
