@@ -89,6 +89,7 @@ LATER = {
     **dict.fromkeys(OF_PARTS, "parts"),
     **dict.fromkeys(OF_DAY_ONE, "duty"),
 }
+SIDES = ("inside", "outside")
 # Those of them that names only start with.
 STARTS = ("allowance_", "fitted ")
 # What is said of a state of the unit turned down that day one does not have, or not by this name.
@@ -572,6 +573,9 @@ class _Analysis:
             duty = self.chain.calculation.duty
             if where and duty is not None and not duty.can_be_cut:
                 message = f"`{name}` is not found: this unit cannot be cut into parts that follow each other"
+        side = next((side for side in SIDES if criterion.result.startswith(f"T {side} surface ")), "")
+        if side and self.chain.has_temperatures and side not in self.chain.known_surfaces:
+            message = f"`{name}` is not known: the stated film there includes other terms"
         self.judging.add(
             "result-unknown",
             criterion.place,

@@ -292,6 +292,12 @@ class _Builder:
                     "stated in the calculation file",
                     term.name,
                 )
+                if term.kind == "fouling":
+                    self.scope.open(
+                        f"{term.name}/included",
+                        "check",
+                        f"{term.name} is a deposit inside a stated coefficient: U clean holds it as U in service does.",
+                    )
                 continue
             if term.kind == "gap":
                 elements.append(layers.gap(term, at))

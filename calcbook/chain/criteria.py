@@ -7,11 +7,15 @@ import numpy as np
 from calcbook.calcfile.calculation import Criterion
 
 Figures = np.ndarray | float
+# A circuit is closed to some 1e-13 of its figures: what differs from a limit by less than ten times that is at it.
+AT_THE_LIMIT = 1e-12
 
 
 def criterion_margin(criterion: Criterion, value: Figures, limit: Figures) -> np.ndarray:
-    """Value less limit, in the direction that is good."""
-    return (np.asarray(value) - limit) * criterion.direction
+    """Value less limit, in the direction that is good; nothing where they differ by the rounding of a circuit."""
+    margin = (np.asarray(value) - limit) * criterion.direction
+    is_at = np.abs(margin) <= AT_THE_LIMIT * np.maximum(np.abs(value), np.abs(limit))
+    return np.where(is_at & np.isfinite(margin), 0.0, margin)
 
 
 def is_met(criterion: Criterion, margin: Figures) -> np.ndarray:

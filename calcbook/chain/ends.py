@@ -188,6 +188,8 @@ def end_surfaces(states: tuple[EndState, ...]) -> Iterator[tuple[str, Array, str
     for state in states:
         condition = state.solution.condition
         for group in (state.chain.inner, state.chain.outer):
+            if group.side not in state.chain.known_surfaces:
+                continue
             surface = f"{group.side} surface"
             figures = state.solution.figure(group.surface_temperature)
             yield (

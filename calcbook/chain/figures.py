@@ -156,11 +156,14 @@ def _stream_results(chain: Chain, solution: Solution, put: Callable[[str, Array,
 
 
 def interfaces(chain: Chain, solution: Solution) -> list[tuple[str, Array]]:
-    """Temperatures between terms, from the inside to the outside, and of both wetted surfaces."""
+    """Temperatures between terms, from the inside to the outside, and of both wetted surfaces: of that of a film that
+    includes other terms none is known."""
     if not chain.has_temperatures:
         return []
     temperatures = temperatures_between(chain, solution)
-    found = [("inside surface", temperatures[1]), ("outside surface", temperatures[-2])]
+    known = chain.known_surfaces
+    ends = {"inside": temperatures[1], "outside": temperatures[-2]}
+    found = [(f"{side} surface", temperature) for side, temperature in ends.items() if side in known]
     for index, (before, after) in enumerate(zip(chain.elements, chain.elements[1:], strict=False), 1):
         found.append((f"{before.name} to {after.name}", temperatures[index]))
     return found

@@ -353,6 +353,13 @@ class Chain:
         return last
 
     @property
+    def known_surfaces(self) -> tuple[str, ...]:
+        """The sides whose wetted surface has a temperature: what a stated film includes stands before its surface."""
+        terms = self.calculation.resistances
+        sides = {"inside": terms[0], "outside": terms[-1]}
+        return tuple(side for side, term in sides.items() if not term.includes)
+
+    @property
     def branches(self) -> tuple[Branch, ...]:
         """Every film and way across a gap, from the inside to the outside."""
         return tuple(branch for element in self.elements for branch in branches_of(element))

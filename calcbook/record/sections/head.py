@@ -199,7 +199,10 @@ def _has_fouling(page: Page) -> bool:
 def _fouling_words(page: Page, condition: str) -> str:
     """What sets the two conditions apart; nothing does where no fouling term is stated."""
     if not _has_fouling(page):
-        return "no fouling term is stated"
+        terms = page.calculation.resistances
+        included = {name for term in terms for name in term.includes}
+        is_inside = any(term.kind == "fouling" and term.name in included for term in terms)
+        return "a stated coefficient includes the deposit" if is_inside else "no fouling term is stated"
     return "with the fouling terms" if condition == "service" else "without the fouling terms"
 
 
