@@ -305,6 +305,8 @@ class _Reader:
                     "properties at",
                     "closes on",
                     "gives",
+                    # That of a built-in card goes with the version of the program.
+                    *(("accuracy",) if house else ()),
                 )
             ),
         )
@@ -661,7 +663,7 @@ class _Reader:
             notes=self.texts("notes"),
             house=house,
             where=self.fields.place,
-            digest_text=self._digest_text(("table", "outside")),
+            digest_text=self._digest_text(("table", "outside", *(("spread",) if house else ()))),
         )
 
     def _column(self, table: Fields, name: str, quantity: str) -> np.ndarray:

@@ -16,6 +16,7 @@ from calcbook.interface import library_of, record_text, solve_file
 from calcbook.library import Library
 from calcbook.library.checking import check_method, method_points
 from calcbook.library.reading import read_method
+from calcbook.record import digest_of
 
 CALCS = Path(__file__).resolve().parents[2] / "calcs"
 CARD = "larkmoor-he-951-shell"
@@ -261,3 +262,14 @@ def test_a_corrected_card_of_the_book_is_recalled_as_a_run_with_it(book: Path) -
     now = solve_file(book / "he-951.yaml", for_record=False).base.results["U_service"].value
     assert now != was
     assert f"{now:.4g}"[:4] in page.output and f"{(now - was) / was:+.2%}".replace("%", " %") in page.output
+
+
+def test_the_accuracy_of_a_card_of_the_book_is_part_of_what_is_signed(book: Path) -> None:
+    """It is computed with: every budget and every probability hangs on it."""
+    before = digest_of(solve_file(book / "he-951.yaml", for_record=False)).cards
+    library_of.cache_clear()
+    text = (book / "cards" / f"{CARD}.yaml").read_text(encoding="utf-8")
+    accuracy = next(line for line in text.splitlines() if line.startswith("accuracy:"))
+    assert "7 %" in accuracy
+    change(book, accuracy, accuracy.replace("7 %", "17 %"))
+    assert digest_of(solve_file(book / "he-951.yaml", for_record=False)).cards != before
