@@ -248,3 +248,12 @@ def test_what_is_found_from_a_solved_calculation_has_no_parts_and_says_why() -> 
     assert control.now > control.was and not control.has_parts
     page = page_of(compare(*sides, ("pressure_turned_down",)))
     assert "is found from a solved calculation, and not in mixtures of the two revisions" in page
+
+
+def test_no_difference_is_taken_between_a_gauge_and_an_absolute_pressure() -> None:
+    """4 bar above the site is some 101 kPa more than 4 bar: the readings alone differ by nothing."""
+    old = example("wc-101")
+    assert "4 bara" in old
+    page = page_of(compare(side_of(old), side_of(old.replace("4 bara", "4 barg", 1))))
+    (row,) = [line for line in page.splitlines() if "4 barg" in line and line.startswith("| streams/")]
+    assert "| none: one is a gauge pressure | none |" in row
