@@ -13,9 +13,14 @@ AT_THE_LIMIT = 1e-12
 
 def criterion_margin(criterion: Criterion, value: Figures, limit: Figures) -> np.ndarray:
     """Value less limit, in the direction that is good; nothing where they differ by the rounding of a circuit."""
-    margin = (np.asarray(value) - limit) * criterion.direction
-    is_at = np.abs(margin) <= AT_THE_LIMIT * np.maximum(np.abs(value), np.abs(limit))
-    return np.where(is_at & np.isfinite(margin), 0.0, margin)
+    return beyond(value, limit) * criterion.direction
+
+
+def beyond(value: Figures, limit: Figures) -> np.ndarray:
+    """How far figures lie above a limit; nothing where they are at it."""
+    difference = np.asarray(value) - limit
+    is_at = np.abs(difference) <= AT_THE_LIMIT * np.maximum(np.abs(value), np.abs(limit))
+    return np.where(is_at & np.isfinite(difference), 0.0, difference)
 
 
 def is_met(criterion: Criterion, margin: Figures) -> np.ndarray:

@@ -13,6 +13,7 @@ from calcbook.chain.along import OF_PARTS
 from calcbook.chain.analysis import DUTY_LOST
 from calcbook.chain.checks import NOT_EVALUABLE, OUTSIDE, check_states
 from calcbook.chain.completing import completed
+from calcbook.chain.criteria import beyond
 from calcbook.chain.ends import OPEN_END, PLACES, end_states, has_ends
 from calcbook.chain.findings import ends_of, figures_to_hold, has_phase_to_keep
 from calcbook.chain.measured import Measured, condition_of
@@ -48,7 +49,7 @@ class Statement:
         """Whether it holds, sample by sample."""
         condition = next(iter(self.result.parts.values()))[0]
         limit = solved[condition][self.limit_step] if self.limit_step else self.limit
-        return np.asarray(COMPARISONS[self.operator](self.result.value(solved), limit))
+        return np.asarray(COMPARISONS[self.operator](beyond(self.result.value(solved), limit), 0.0))
 
 
 @dataclass(frozen=True, slots=True)

@@ -81,3 +81,23 @@ def test_a_result_at_its_limit_by_the_file_meets_it(part: float, tmp_path: Path)
     path.write_text(found.replace("acceptance:", specified).replace(">=", ">"), encoding="utf-8")
     (criterion,) = solve_file(path, for_record=False).base.criteria
     assert not criterion.met
+
+
+def test_a_result_at_its_limit_in_every_sample_meets_it_in_every_sample(tmp_path: Path) -> None:
+    """The cleanliness that is specified does not move with the films: it is met surely, not as a coin falls."""
+    path = tmp_path / "in-3.yaml"
+    dirt = next(line for line in TUBE.splitlines() if "name: dirt" in line)
+    text = TUBE.replace(dirt, "  - {name: dirt, kind: fouling, on: outside}").replace(
+        "T outside surface service >= 95 degC", "cleanliness >= 80 %, probability: 90 %"
+    )
+    text = text.replace("is: inner fluid, source: test", "is: inner fluid, source: test, tolerance: 1 K")
+    text = text.replace("coefficient: {value: 500 W/(m^2 K), source: test}", "coefficient: h_2")
+    text = text.replace(
+        "givens:\n", "givens:\n  h_2: {value: 500 W/(m^2 K), is: film, source: test, tolerance: 10 %}\n"
+    )
+    specified = (
+        "fouling specified as: {cleanliness: {value: 80 %, source: test}}\nuncertainty: {of: [U_service]}\n"
+    )
+    path.write_text(text.replace("acceptance:", f"{specified}acceptance:"), encoding="utf-8")
+    (criterion,) = solve_file(path, for_record=False).base.criteria
+    assert criterion.met and criterion.reached == 1.0
