@@ -167,7 +167,7 @@ def test_no_code_is_kept_that_nothing_raises() -> None:
 @pytest.mark.parametrize("path", BAD, ids=lambda path: path.stem)
 def test_every_fault_points_into_its_file_and_says_what_is_right(path: Path) -> None:
     for fault in faults_of(path).faults:
-        source = path.with_name(fault.place.file)
+        source = path.parent / fault.place.file
         lines = source.read_text(encoding="utf-8").split("\n")
         assert lines[fault.place.line - 1] == fault.place.excerpt
         assert 1 <= fault.place.column <= len(fault.place.excerpt) + 1

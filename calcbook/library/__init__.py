@@ -134,9 +134,10 @@ class Library:
 
 
 def _card_twice(singular: str, name: str, house: Path) -> Fault:
+    number, line = _first_line(house)
     return Fault(
         "card-twice",
-        Place(f"{house.parent.name}/{house.name}"),
+        Place(f"{house.parent.name}/{house.name}", number, 1, len(line) + 1, line),
         f"the book and the library have a {singular} of one name",
         name,
         "a name of its own for the card of the book",
@@ -159,14 +160,20 @@ def _is_plain(name: str) -> bool:
 
 def _first_key(path: Path) -> str:
     """The word before the first colon of a card's first line that is no comment."""
+    return _first_line(path)[1].partition(":")[0].strip(" {\"'")
+
+
+def _first_line(path: Path) -> tuple[int, str]:
+    """A card's first line that is no comment, with its number; an empty one of a file that is no text."""
     try:
         lines = path.read_text(encoding="utf-8-sig").splitlines()
     except (OSError, UnicodeDecodeError):
-        return ""
-    first = next(
-        (line for line in lines if line.strip() and not line.lstrip().startswith(("#", "---", "%"))), ""
+        return 1, ""
+    numbered = enumerate(lines, 1)
+    said = (
+        item for item in numbered if item[1].strip() and not item[1].lstrip().startswith(("#", "---", "%"))
     )
-    return first.partition(":")[0].strip(" {\"'")
+    return next(said, (1, ""))
 
 
 _built_in = Library()

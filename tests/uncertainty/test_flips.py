@@ -13,6 +13,7 @@ from small_flips import flips_of, solved_of
 from calcbook.chain import analysis
 from calcbook.chain.analysis import is_found_later
 from calcbook.chain.build import build
+from calcbook.chain.criteria import AT_THE_LIMIT
 from calcbook.chain.flips_outcome import CONTROLLING, CRITERION, LIMIT, METHOD, Flip, Flips, Searched
 from calcbook.chain.outcome import CaseOutcome
 from calcbook.chain.pressure import drops, law_of
@@ -544,7 +545,8 @@ def test_a_figure_close_to_its_flip_is_told_with_the_digits_of_the_change(
     required = 1.0 / (2.825e-3 + part * 2e-4)
     body = PLANE.replace("250 W/(m^2 K), is: required", f"{required!r} W/(m^2 K), is: required")
     flip = one(flips_of(tmp_path, body), CRITERION, "R_f")
-    left = 1.0 / required - 2.825e-3
+    # A coefficient that is short by the rounding of a circuit is at the limit.
+    left = (1.0 + AT_THE_LIMIT) / required - 2.825e-3
     # Known to 1e-4 of the change; the sums of resistances round at 4e-19 m² K/W, 1e-7 of the smallest change.
     assert flip.at - 2e-4 == pytest.approx(left, rel=1.1e-4, abs=0.0)
     last = 10.0 ** (-4 - digits + 1)
