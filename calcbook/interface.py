@@ -8,7 +8,7 @@ from functools import cache, partial
 from pathlib import Path
 from typing import Any
 
-from calcbook.calcfile import Calculation, Settings, read_calculation, read_settings
+from calcbook.calcfile import Calculation, Settings, read_calculation, read_document, read_settings
 from calcbook.chain.analysis import NotConverged, analyse, judged_later
 from calcbook.chain.build import build
 from calcbook.chain.flips_outcome import Flips
@@ -16,7 +16,7 @@ from calcbook.chain.impossible_results import tell_impossible_results
 from calcbook.chain.outcome import Solved
 from calcbook.chain.pressure import drops
 from calcbook.chain.types import Chain
-from calcbook.documents import Mapping, Scalar, read_file
+from calcbook.documents import Document, Mapping, Scalar, read_file
 from calcbook.faults import Collector, Fault, Faults, Place, shown
 from calcbook.library import CARDS, Library
 from calcbook.links import ISSUED, Links, Source
@@ -72,9 +72,29 @@ def solve_file(
     Raises ``Faults`` and ``NotConverged``.
     """
     collector = Collector()
+    document = read_file(path, name, collector)
+    return _solved_document(document, path, collector, above, for_record, search)
+
+
+def solve_document(document: Document, path: Path) -> Solved:
+    """As ``solve_file`` of the file at ``path``, not for a record, with another tree than the file's own.
+
+    Raises ``Faults`` and ``NotConverged``.
+    """
+    return _solved_document(document, path, Collector(), (), False, None)
+
+
+def _solved_document(
+    document: Document,
+    path: Path,
+    collector: Collector,
+    above: tuple[Path, ...],
+    for_record: bool,
+    search: Search | None,
+) -> Solved:
     settings = _settings(path.parent, collector)
     resolve = links_of(path, settings, above)
-    calculation = read_calculation(path, settings, collector, name, resolve)
+    calculation = read_document(document, settings, collector, path.parent, resolve)
     solved = _solved(calculation, library_of(path.parent / HOUSE_CARDS), collector, for_record, search)
     collector.stop_if_any()
     assert solved is not None

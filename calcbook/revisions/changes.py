@@ -1,7 +1,8 @@
 """What two revisions say differently: one change per fact, in the order of the file.
 
-Terms are matched by name, givens by symbol. A change that can move a result of the base case carries the
-edits that make it in the old file's tree, so that any subset of changes can be read and solved on its own.
+Terms are matched by name, renamed ones by that of the new side (see ``renames``); givens by symbol. A change that can
+move a result of the base case carries the edits that make it in the old file's tree, so that any subset of changes can
+be read and solved on its own.
 """
 
 from __future__ import annotations
@@ -40,6 +41,9 @@ WAY = frozenset(
 BESIDE = {"tolerance": "tolerance", "is": "meaning", "from": "taken from"}
 NOT_STATED = "not stated"
 ORDER = "resistances/order of terms"
+# New names of terms by their old ones.
+Renames = dict[str, str]
+NO_NAMES: Renames = {}
 
 
 @dataclass(frozen=True, slots=True)
@@ -88,10 +92,10 @@ class Figure:
     beside: object
 
 
-def changes_between(old: Side, new: Side) -> tuple[Change, ...]:
+def changes_between(old: Side, new: Side, renamed: Renames = NO_NAMES) -> tuple[Change, ...]:
     """Every difference from the old side to the new one, in the order of the file; then book settings and
-    cards."""
-    return _Differences(old, new).found()
+    cards. ``renamed`` are terms that the old side calls by their new names already, by the old ones."""
+    return _Differences(old, new, renamed).found()
 
 
 def entries_of(node: Node | None, section: str) -> dict[str, tuple[Scalar | None, Node]]:
@@ -180,9 +184,10 @@ def same_number(one: Figure, other: Figure) -> bool:
 
 
 class _Differences:
-    def __init__(self, old: Side, new: Side):
+    def __init__(self, old: Side, new: Side, renamed: Renames):
         self.old = old
         self.new = new
+        self.renamed = renamed
         self.changes: list[Change] = []
 
     def found(self) -> tuple[Change, ...]:
@@ -469,6 +474,9 @@ class _Differences:
 
     def _terms(self, section: str) -> None:
         old, new = self._roots(section)
+        for called, name in self.renamed.items():
+            path = (section, name, "name")
+            self.changes.append(Change("/".join(path), "text only", path, f"term {name}, name", called, name))
         for name, key, was, now in self._pairs(old, new, section):
             self._term((section, name), name, was, now, key)
         before, after = list(entries_of(old, section)), list(entries_of(new, section))

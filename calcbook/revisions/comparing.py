@@ -29,6 +29,7 @@ from calcbook.record.numbers import (
 from calcbook.revisions.attribution import Attribution, attribute
 from calcbook.revisions.changes import Change, changes_between, entries_of, merged
 from calcbook.revisions.mixtures import woven
+from calcbook.revisions.renames import with_new_names
 from calcbook.revisions.sides import Side, check_key
 
 DEFAULT_RESULTS = ("U_service",)
@@ -203,10 +204,13 @@ def compare(
 ) -> Comparison:
     """Compare two sides; ``results`` are those whose difference is attributed to the changes.
 
+    Terms that were renamed are called by their new names throughout.
     Raises ``Faults`` (result-unknown) for a result that one side does not have.
     """
+    # What was recorded of the old side stands under the names that it had.
+    recorded, (old, renamed) = old, with_new_names(old, new)
     _check_results(old, new, results)
-    changes = changes_between(old, new)
+    changes = changes_between(old, new, renamed)
     before, after = old.solved, new.solved
     opened, closed = _open_items(before, after)
     return Comparison(
@@ -222,8 +226,8 @@ def compare(
         margins=_margins(before, after),
         cases=_cases(before, after),
         attributions=attribute(old, new, changes, tuple(dict.fromkeys(results))),
-        software=_software(old, new, ("U_clean", *results)),
-        software_checks=_software_checks(old),
+        software=_software(recorded, new, ("U_clean", *results)),
+        software_checks=_software_checks(recorded),
         unchanged=_unchanged(old, new),
         signoffs=tuple(signoffs),
         feeds=tuple(feeds),

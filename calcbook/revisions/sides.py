@@ -8,7 +8,7 @@ import re
 import shutil
 import tempfile
 import weakref
-from collections.abc import Iterable, Mapping
+from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass, field, replace
 from pathlib import Path
 
@@ -20,7 +20,7 @@ from calcbook.chain.outcome import Solved
 from calcbook.documents import Document, Node, Scalar, Sequence, read_file
 from calcbook.documents import Mapping as MappingNode
 from calcbook.faults import Collector, Fault, Faults, Place, nearest_names, shown
-from calcbook.interface import HOUSE_CARDS, solve_file
+from calcbook.interface import HOUSE_CARDS, solve_document, solve_file
 from calcbook.record import Digest, digest_of
 from calcbook.revisions.git import Commit, commit_of
 from calcbook.seals import (
@@ -55,7 +55,7 @@ class Side:
     place. ``results`` is the results file that was recorded for this content, None where there is none.
     ``software`` is what that results file was made with (empty without one). ``state`` is the state of its lifecycle,
     with the kind of its issue (`issued, final`); that of a revision of the repository is not known. An issued copy
-    ``is_frozen``.
+    ``is_frozen``. ``path`` is where it was read from.
     """
 
     label: str
@@ -68,6 +68,7 @@ class Side:
     file_name: str
     tree: Node
     digest: Digest
+    path: Path
     state: str = NOT_KNOWN
     is_frozen: bool = False
     keeper: object = field(default=None, repr=False, compare=False)
@@ -341,6 +342,23 @@ def _solved_side(path: Path, called: str) -> Side:
     return _side(solve_file(path, called, for_record=False), path, called)
 
 
+def solved_again(side: Side, edited: Callable[[Node], Node]) -> Side:
+    """The side with its file's tree edited; its digest and what was recorded stay those of the file.
+
+    Raises ``Faults`` and ``NotConverged`` where the edited file gives no answer.
+    """
+    document = side.document._replace(root=edited(side.document.root))
+    solved = solve_document(document, side.path)
+    calculation = solved.chain.calculation
+    return replace(
+        side,
+        document=document,
+        calculation=calculation,
+        solved=solved,
+        tree=_written_out(document.root, side.path.parent, calculation),
+    )
+
+
 def _side(solved: Solved, path: Path, called: str) -> Side:
     document = read_file(path, called)
     calculation = solved.chain.calculation
@@ -356,6 +374,7 @@ def _side(solved: Solved, path: Path, called: str) -> Side:
         called,
         _written_out(document.root, path.parent, calculation),
         digest_of(solved),
+        path,
     )
 
 
