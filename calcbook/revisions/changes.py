@@ -40,7 +40,7 @@ WAY = frozenset(
 # What stands beside the figure of a given and moves no result, with the words for it.
 BESIDE = {"tolerance": "tolerance", "is": "meaning", "from": "taken from"}
 NOT_STATED = "not stated"
-ORDER = "resistances/order of terms"
+ORDER = "resistances/order of the terms"
 # New names of terms by their old ones.
 Renames = dict[str, str]
 NO_NAMES: Renames = {}
@@ -241,6 +241,26 @@ class _Differences:
             if was is None or now is None or meaning_of(was) != meaning_of(now):
                 yield name, key, was, now
 
+    def _order(
+        self,
+        path: tuple[str, ...],
+        kind: str,
+        items: str,
+        old: Node | None,
+        new: Node | None,
+        moves: bool = False,
+    ) -> None:
+        """One change where what both lists hold stands in another order."""
+        before, after = entries_of(old, path[-1]), entries_of(new, path[-1])
+        was, now = [name for name in before if name in after], [name for name in after if name in before]
+        if was != now:
+            title = f"order of the {items}"
+            self.changes.append(
+                Change(
+                    "/".join((*path, title)), kind, path, title, ", ".join(was), ", ".join(now), moves=moves
+                )
+            )
+
     def _add(
         self,
         path: tuple[str, ...],
@@ -351,13 +371,14 @@ class _Differences:
 
     def _statements(self, section: str) -> None:
         kinds = {
-            "revisions": ("text only", "revision history, "),
-            "acceptance": ("criterion", "criterion "),
-            "accept": ("accept", "accepted check "),
+            "revisions": ("text only", "revision history, ", "revisions of the history"),
+            "acceptance": ("criterion", "criterion ", "criteria"),
+            "accept": ("accept", "accepted check ", "accepted checks"),
         }
-        kind, title = kinds[section]
+        kind, title, items = kinds[section]
         for name, key, old, new in self._pairs(*self._roots(section), section):
             self._add((section, name), kind, f"{title}{name}", old, new, key, moves=False)
+        self._order((section,), kind, items, *self._roots(section))
 
     def _assumptions(self, section: str) -> None:
         for name, key, old, new in self._pairs(*self._roots(section), section):
@@ -479,21 +500,7 @@ class _Differences:
             self.changes.append(Change("/".join(path), "text only", path, f"term {name}, name", called, name))
         for name, key, was, now in self._pairs(old, new, section):
             self._term((section, name), name, was, now, key)
-        before, after = list(entries_of(old, section)), list(entries_of(new, section))
-        common_before = [name for name in before if name in after]
-        common_after = [name for name in after if name in before]
-        if common_before != common_after:
-            self.changes.append(
-                Change(
-                    ORDER,
-                    "term",
-                    (section,),
-                    "order of the terms",
-                    ", ".join(common_before),
-                    ", ".join(common_after),
-                    moves=True,
-                )
-            )
+        self._order((section,), "term", "terms", old, new, moves=True)
 
     def _term(
         self, path: tuple[str, ...], name: str, old: Node | None, new: Node | None, key: Scalar | None
@@ -522,6 +529,7 @@ class _Differences:
         if part == "parallel" and both:
             for name, _, was, now in self._pairs(old, new, part):
                 self._term((*path, name), name, was, now, None)
+            self._order(path, "text only", f"branches of {path[-2]}", old, new)
         elif part in ("with", "deposit", "growth", "fins") and both:
             for name, inner_key, was, now in self._pairs(old, new, part):
                 if part == "growth" and name == "model":

@@ -292,9 +292,24 @@ def test_another_order_of_terms_is_a_change() -> None:
     end = old.index("  - name: weather side")
     new = old[:first] + old[second:end] + old[first:second] + old[end:]
     comparison = compare(example_side(old), example_side(new))
-    assert [change.id for change in comparison.changes] == ["resistances/order of terms"]
+    assert [change.id for change in comparison.changes] == ["resistances/order of the terms"]
     (attribution,) = comparison.attributions
     assert attribution.difference and abs(attribution.rest) <= 1e-9 * attribution.was
+
+
+def test_another_order_of_criteria_branches_and_history_is_told() -> None:
+    """The first criterion says which case governs, so that its place is part of what is signed."""
+    criterion = "  - {that: U_service >= 600 W/(m^2 K), source: specification 4}\n"
+    second = "  - {that: U_clean >= 700 W/(m^2 K), source: specification 4}\n"
+    old, new = (STATED.replace(criterion, both) for both in (criterion + second, second + criterion))
+    change = one(old, new)
+    assert (change.id, change.kind, change.moves) == (
+        "acceptance/order of the criteria",
+        "criterion",
+        False,
+    )
+    assert (change.was, change.now) == ("U_service >=, U_clean >=", "U_clean >=, U_service >=")
+    assert not changes(old, old)
 
 
 def test_a_changed_table_file_is_a_changed_fluid(tmp_path: Path) -> None:
